@@ -1,0 +1,3 @@
+module leadline
+
+go 1.26
