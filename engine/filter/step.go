@@ -1,0 +1,76 @@
+package filter
+
+// Quantity is one of the quantities over which each Gaussian of a belief is
+// kept. The first Dim of them are the position within the cell in metres.
+type Quantity struct {
+	Name string // as in the constants below; sensors find theirs by name
+	// Angular quantities are radians and wrap at 2π.
+	Angular bool
+	// PriorMean and PriorVar are where it starts. Heading on lines starts at
+	// the heading of the line instead of PriorMean.
+	PriorMean, PriorVar float64
+	// DriftVar is the variance it gains a second, as a random walk.
+	DriftVar float64
+}
+
+// Names of quantities, with units.
+const (
+	Along         = "along_m"       // position within the cell on a line
+	East          = "east_m"        // position within the cell on a plane
+	North         = "north_m"       //
+	Heading       = "heading_rad"   // vehicle heading, clockwise from frame north
+	OdometerScale = "odometer_scale" // true distance / measured distance - 1
+)
+
+// Index returns the index of the named quantity, or -1.
+func Index(qs []Quantity, name string) int {
+	for i, q := range qs {
+		if q.Name == name {
+			return i
+		}
+	}
+	return -1
+}
+
+// Packed returns the index of element (i, j), i ≥ j, of a symmetric matrix
+// kept as its lower triangle, row by row.
+func Packed(i, j int) int { return i*(i+1)/2 + j }
+
+// Step moves a belief: x' = F x + Add + w with w ~ N(0, Q), over the K
+// quantities of the belief (over east and north alone on a plane without
+// any). Positions are continuous: Add may be any number of cells.
+type Step struct {
+	F   []float64 // K×K by rows; nil is the identity
+	Add []float64 // K
+	Q   []float64 // packed K(K+1)/2, positive semi-definite
+	// Local, if set, replaces the position rows of F and Add for each
+	// Gaussian: motion that depends on where a vehicle is or which way it
+	// faces. It cannot be used on a plane without quantities.
+	Local Local
+}
+
+// Local computes position-dependent motion for n Gaussians: the shift of the
+// position quantities (add, n×Dim) and their derivatives with respect to all
+// quantities (f, n×Dim×K, including the 1 of a position on itself), given the
+// columns at the Gaussians' positions and their means (n×K).
+type Local interface {
+	Wants() Wants
+	Local(add, f []float64, at *Columns, mean []float64)
+}
+
+// NewStep makes a step over k quantities that changes nothing.
+func NewStep(k int) Step {
+	return Step{Add: make([]float64, k), Q: make([]float64, k*(k+1)/2)}
+}
+
+// SetF sets element (i, j) of F, making F the identity first if it is nil.
+func (s *Step) SetF(i, j int, v float64) {
+	k := len(s.Add)
+	if s.F == nil {
+		s.F = make([]float64, k*k)
+		for d := range k {
+			s.F[d*k+d] = 1
+		}
+	}
+	s.F[i*k+j] = v
+}
