@@ -15,10 +15,10 @@ type Quantity struct {
 
 // Names of quantities, with units.
 const (
-	Along         = "along_m"       // position within the cell on a line
-	East          = "east_m"        // position within the cell on a plane
-	North         = "north_m"       //
-	Heading       = "heading_rad"   // vehicle heading, clockwise from frame north
+	Along         = "along_m"        // position within the cell on a line
+	East          = "east_m"         // position within the cell on a plane
+	North         = "north_m"        //
+	Heading       = "heading_rad"    // vehicle heading, clockwise from frame north
 	OdometerScale = "odometer_scale" // true distance / measured distance - 1
 )
 
