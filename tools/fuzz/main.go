@@ -1,0 +1,177 @@
+// Command fuzz runs every fuzz target of the module live, one after the other,
+// with a share each of one total time. It fails when a target finds something
+// or has an empty corpus. A finding is left under testdata/fuzz of its package,
+// where the ordinary tests run it from then on.
+//
+// Building the targets is not counted: they need a build of their own, with
+// coverage instrumentation, which the Go build cache keeps.
+package main
+
+import (
+	"bytes"
+	"context"
+	"errors"
+	"flag"
+	"fmt"
+	"os"
+	"os/exec"
+	"path"
+	"path/filepath"
+	"regexp"
+	"strings"
+	"time"
+)
+
+// leastShare is the shortest run that still does more than replay the corpus.
+const leastShare = 500 * time.Millisecond
+
+// graceTime is what a target may take beyond its share, to start, to replay
+// its corpus and to shrink a finding, before it counts as hanging.
+const graceTime = 2 * time.Minute
+
+type target struct {
+	pkg, dir, binary, name string
+}
+
+func main() {
+	total := flag.Duration("total", time.Minute, "time that all targets share")
+	flag.Parse()
+	patterns := flag.Args()
+	if len(patterns) == 0 {
+		patterns = []string{"./..."}
+	}
+	if err := run(*total, patterns); err != nil {
+		fmt.Fprintln(os.Stderr, "fuzz:", err)
+		os.Exit(1)
+	}
+}
+
+func run(total time.Duration, patterns []string) error {
+	work, err := os.MkdirTemp("", "leadline-fuzz-")
+	if err != nil {
+		return err
+	}
+	defer os.RemoveAll(work)
+	targets, err := find(patterns, work)
+	if err != nil {
+		return err
+	}
+	if len(targets) == 0 {
+		fmt.Println("fuzz: no fuzz targets")
+		return nil
+	}
+	cache, err := output("", "go", "env", "GOCACHE")
+	if err != nil {
+		return err
+	}
+	share := max(total/time.Duration(len(targets)), leastShare)
+	fmt.Printf("fuzz: %d targets, %.1f s each\n", len(targets), share.Seconds())
+	bad := 0
+	for _, t := range targets {
+		if err := live(t, share, filepath.Join(strings.TrimSpace(cache), "fuzz", t.pkg)); err != nil {
+			bad++
+			fmt.Printf("fuzz: %s %s: %v\n", t.pkg, t.name, err)
+		}
+	}
+	if bad > 0 {
+		return fmt.Errorf("%d of %d targets failed", bad, len(targets))
+	}
+	return nil
+}
+
+// declares finds the packages worth an instrumented build; the test binary
+// itself then lists its targets.
+var declares = regexp.MustCompile(`(?m)^func Fuzz\w*\(`)
+
+func find(patterns []string, work string) ([]target, error) {
+	const format = `{{.ImportPath}}{{"\t"}}{{.Dir}}{{range .TestGoFiles}}{{"\t"}}{{.}}{{end}}{{range .XTestGoFiles}}{{"\t"}}{{.}}{{end}}`
+	list, err := output("", "go", append([]string{"list", "-f", format}, patterns...)...)
+	if err != nil {
+		return nil, err
+	}
+	var targets []target
+	for line := range strings.Lines(list) {
+		fields := strings.Split(strings.TrimSpace(line), "\t")
+		pkg, dir, files := fields[0], fields[1], fields[2:]
+		has := false
+		for _, file := range files {
+			text, err := os.ReadFile(filepath.Join(dir, file))
+			if err != nil {
+				return nil, err
+			}
+			has = has || declares.Match(text)
+		}
+		if !has {
+			continue
+		}
+		binary := filepath.Join(work, strings.ReplaceAll(path.Clean(pkg), "/", "-")+".test")
+		if _, err := output("", "go", "test", "-c", "-fuzz=.", "-o", binary, pkg); err != nil {
+			return nil, err
+		}
+		names, err := output(dir, binary, "-test.list=^Fuzz")
+		if err != nil {
+			return nil, err
+		}
+		for _, name := range strings.Fields(names) {
+			targets = append(targets, target{pkg, dir, binary, name})
+		}
+	}
+	return targets, nil
+}
+
+var (
+	runs     = regexp.MustCompile(`(?m)^=== RUN +Fuzz\w+/`)
+	progress = regexp.MustCompile(`execs: (\d+)`)
+)
+
+// live replays the corpus of one target and then fuzzes it for the time given.
+func live(t target, share time.Duration, cache string) error {
+	exact := "^" + t.name + "$"
+	seeds, err := output(t.dir, t.binary, "-test.v", "-test.run="+exact)
+	if err != nil {
+		return fmt.Errorf("its corpus fails: %w", err)
+	}
+	n := len(runs.FindAllString(seeds, -1))
+	if n == 0 {
+		return errors.New("its corpus is empty: add seeds with f.Add or under testdata/fuzz")
+	}
+
+	ctx, cancel := context.WithTimeout(context.Background(), share+graceTime)
+	defer cancel()
+	cmd := exec.CommandContext(ctx, t.binary, "-test.run=^$", "-test.fuzz="+exact,
+		"-test.fuzztime="+share.String(), "-test.fuzzcachedir="+cache)
+	cmd.Dir = t.dir
+	var said bytes.Buffer
+	cmd.Stdout, cmd.Stderr = &said, &said
+	start := time.Now()
+	err = cmd.Run()
+	if ctx.Err() != nil {
+		return fmt.Errorf("still running %v after its time:\n%s", graceTime, said.String())
+	}
+	// The fuzzing engine may report its own deadline, which is the end of the
+	// time given, as the failure of a slow call; a finding always comes with
+	// an input.
+	timeUp := strings.Contains(said.String(), "context deadline exceeded") &&
+		!strings.Contains(said.String(), "Failing input written to")
+	if err != nil && !timeUp {
+		return fmt.Errorf("%w\n%s", err, said.String())
+	}
+	execs := "0"
+	if all := progress.FindAllStringSubmatch(said.String(), -1); len(all) > 0 {
+		execs = all[len(all)-1][1]
+	}
+	fmt.Printf("fuzz: %s %s: %d seeds, %s inputs in %.1f s, no finding\n", t.pkg, t.name, n, execs, time.Since(start).Seconds())
+	return nil
+}
+
+// output runs a command and returns what it prints; its error carries the rest.
+func output(dir, name string, args ...string) (string, error) {
+	cmd := exec.Command(name, args...)
+	cmd.Dir = dir
+	var stdout, stderr bytes.Buffer
+	cmd.Stdout, cmd.Stderr = &stdout, &stderr
+	if err := cmd.Run(); err != nil {
+		return "", fmt.Errorf("%s %s: %w\n%s%s", filepath.Base(name), strings.Join(args, " "), err, stdout.String(), stderr.String())
+	}
+	return stdout.String(), nil
+}
