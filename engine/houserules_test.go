@@ -1,0 +1,201 @@
+// Package engine_test holds the rules of the house that the compiler does not
+// know: which package may import which, where protobuf and test fixtures may be
+// seen, and what the filtering packages must not touch.
+package engine_test
+
+import (
+	"maps"
+	"slices"
+	"strings"
+	"testing"
+)
+
+// kernel may be imported by every package that has a row.
+const kernel = "engine/kernel"
+
+// api is the generated protobuf code.
+const api = "proto/leadline/v1"
+
+// everything in a row permits any package of ours.
+const everything = "*"
+
+// mayImport is the table of packages: for each, the packages of ours that its
+// non-test files may import beside kernel. A package without a row fails, so a
+// new one is a decision, not an accident. A row ending in /... speaks for all
+// packages below it, which may also import one another.
+var mayImport = map[string][]string{
+	api:                        {},
+	"engine/geo":               {},
+	kernel:                     {},
+	"engine/filter":            {"engine/geo"},
+	"engine/filter/filtertest": {"engine/filter", "engine/geo"},
+	"engine/sensor":            {"engine/filter", "engine/geo"},
+	"engine/plane":             {"engine/filter", "engine/geo"},
+	"network":                  {"engine/filter", "engine/geo"},
+	"network/roadfile":         {"network", "engine/filter", "engine/geo"},
+	"terrain":                  {"engine/geo"},
+	"terrain/heightfile":       {"terrain", "engine/geo"},
+	"engine/summary":           {"engine/filter", "engine/geo"},
+	"engine/session":           {"engine/filter", "engine/sensor", "engine/summary", "engine/geo"},
+	"engine/traffic":           {"engine/filter", "engine/sensor", "engine/geo"},
+	"engine/drivefile":         {api, "engine/sensor", "engine/geo"},
+	"engine/journal":           {},
+	"engine/server": {
+		"engine/session", "engine/traffic", "engine/sensor", "engine/summary",
+		"engine/filter", "engine/geo", "engine/journal", api,
+	},
+	"engine/client":  {api},
+	"engine/logfile": {"engine/sensor", "engine/geo"},
+	"engine/study/...": {
+		"engine/session", "engine/traffic", "engine/summary", "engine/filter", "engine/sensor",
+		"engine/geo", "engine/drivefile", "engine/logfile", "engine/journal",
+	},
+	"engine/page":            {api},
+	"cmd/leadline":           {everything},
+	"fixtures":               {},
+	"fixtures/sim":           {"engine/geo", "network", "terrain"},
+	"fixtures/outside":       {},
+	"fixtures/outside/fetch": {"fixtures/outside"},
+	"tools/...":              {},
+}
+
+// notKernel may not even import kernel: the simulator shares nothing with the
+// filter's models beyond geodesy, and tools belong to no package of ours.
+var notKernel = []string{"fixtures/sim", "fixtures/outside", "fixtures/outside/fetch", "tools/..."}
+
+// knowProtobuf may import the API and the protobuf and gRPC libraries.
+var knowProtobuf = []string{api, "engine/server", "engine/client", "engine/page", "engine/drivefile", "cmd/leadline"}
+
+var protobufLibraries = []string{
+	"google.golang.org/protobuf", "google.golang.org/grpc", "github.com/golang/protobuf",
+	"connectrpc.com/connect", "github.com/planetscale/vtprotobuf",
+}
+
+// importsFixtures is the one file outside fixtures that may import them.
+const importsFixtures = "cmd/leadline/demo.go"
+
+// row returns the pattern and the permitted imports of a package.
+func row(pkg string) (pattern string, allowed []string, ok bool) {
+	for _, pattern := range slices.Sorted(maps.Keys(mayImport)) {
+		if matches(pattern, pkg) {
+			return pattern, mayImport[pattern], true
+		}
+	}
+	return "", nil, false
+}
+
+// breaksTable says whether the table forbids the import, and why.
+func breaksTable(pkg, imported string) string {
+	pattern, allowed, ok := row(pkg)
+	switch {
+	case !ok:
+		return "it has no row in mayImport (engine/houserules_test.go)"
+	case slices.Contains(allowed, everything), slices.Contains(allowed, imported):
+		return ""
+	case imported == kernel && !anyMatches(notKernel, pkg):
+		return ""
+	case strings.HasSuffix(pattern, "/...") && matches(pattern, imported):
+		return ""
+	}
+	return "its row allows only " + strings.Join(append([]string{kernel}, allowed...), ", ")
+}
+
+func TestImportTable(t *testing.T) {
+	files, _ := load(t)
+	for _, f := range files {
+		if _, _, ok := row(f.pkg); !ok {
+			t.Errorf("package %s has no row in mayImport (engine/houserules_test.go): decide what it may import", f.pkg)
+			continue
+		}
+		for _, path := range imports(f) {
+			imported, our := ours(path)
+			if !our {
+				continue
+			}
+			if why := breaksTable(f.pkg, imported); why != "" {
+				t.Errorf("%s imports %s: %s", f.path, imported, why)
+			}
+		}
+	}
+}
+
+// Two rules that the rows imply are also checked as they stand, so that a
+// hurried edit of the table cannot undo them.
+func TestMapsAndEngineStayApart(t *testing.T) {
+	files, _ := load(t)
+	for _, f := range files {
+		for _, path := range imports(f) {
+			imported, _ := ours(path)
+			switch {
+			case matches("network/...", f.pkg) && matches("terrain/...", imported),
+				matches("terrain/...", f.pkg) && matches("network/...", imported):
+				t.Errorf("%s imports %s: network and terrain never import each other", f.path, imported)
+			case matches("engine/...", f.pkg) && (matches("network/...", imported) || matches("terrain/...", imported)):
+				t.Errorf("%s imports %s: the engine is handed a Space or a Field and knows no map", f.path, imported)
+			}
+		}
+	}
+}
+
+func TestWhoKnowsProtobuf(t *testing.T) {
+	files, _ := load(t)
+	for _, f := range files {
+		if slices.Contains(knowProtobuf, f.pkg) {
+			continue
+		}
+		for _, path := range imports(f) {
+			imported, _ := ours(path)
+			for _, library := range protobufLibraries {
+				if imported == api || matches(library+"/...", path) {
+					t.Errorf("%s imports %s: only %s know protobuf", f.path, path, strings.Join(knowProtobuf, ", "))
+					break
+				}
+			}
+		}
+	}
+}
+
+func TestOnlyTheDemoImportsFixtures(t *testing.T) {
+	files, _ := load(t)
+	for _, f := range files {
+		if matches("fixtures/...", f.pkg) || f.path == importsFixtures {
+			continue
+		}
+		for _, path := range imports(f) {
+			if imported, our := ours(path); our && matches("fixtures/...", imported) {
+				t.Errorf("%s imports %s: only %s and tests may", f.path, imported, importsFixtures)
+			}
+		}
+	}
+}
+
+// The checks above must be able to fail.
+func TestTableForbids(t *testing.T) {
+	for _, c := range []struct {
+		pkg, imported string
+		allowed       bool
+	}{
+		{"engine/filter", "engine/geo", true},
+		{"engine/filter", kernel, true},
+		{"engine/filter", "engine/sensor", false},
+		{"engine/geo", "engine/filter", false},
+		{"engine/session", "engine/plane", false},
+		{"engine/session", api, false},
+		{"engine/study/replay", "engine/study/score", true},
+		{"engine/study/replay", "engine/drivefile", true},
+		{"engine/study/replay", "engine/server", false},
+		{"engine/study/replay", "network", false},
+		{"network", "terrain", false},
+		{"terrain/heightfile", "terrain", true},
+		{"fixtures/sim", "network", true},
+		{"fixtures/sim", kernel, false},
+		{"fixtures/sim", "engine/filter", false},
+		{"cmd/leadline", "engine/server", true},
+		{"engine/unheard", "engine/geo", false},
+		{"engine/geographic", "engine/geo", false},
+	} {
+		if why := breaksTable(c.pkg, c.imported); (why == "") != c.allowed {
+			t.Errorf("%s imports %s: allowed %v, want %v (%s)", c.pkg, c.imported, why == "", c.allowed, why)
+		}
+	}
+}
