@@ -1,0 +1,242 @@
+package filter
+
+import (
+	"math"
+
+	"leadline/engine/geo"
+)
+
+// ScaleM returns the length over which a lattice belief changes: the standard
+// deviation of a Gaussian with the same Fisher information along its sharper
+// axis,
+//
+//	J = Σ 4 (√p(i+1) - √p(i))² / h²,   scale = 1/√max(J east, J north).
+//
+// For modes far apart J is the mean over the modes, so that the scale is that
+// of the modes and not of the distance between them.
+func (b *Belief) ScaleM() float64 {
+	t := &b.Tiles
+	var je, jn float64
+	for i, at := range t.At {
+		tile := t.tile(i)
+		var east, north []float64
+		if j := t.find(TileAt{at.Col + 1, at.Row}); j >= 0 {
+			east = t.tile(j)
+		}
+		if j := t.find(TileAt{at.Col, at.Row + 1}); j >= 0 {
+			north = t.tile(j)
+		}
+		for r := range TileSide {
+			for c := range TileSide {
+				root := math.Sqrt(tile[r*TileSide+c])
+				var e, n float64
+				if c+1 < TileSide {
+					e = tile[r*TileSide+c+1]
+				} else if east != nil {
+					e = east[r*TileSide]
+				}
+				if r+1 < TileSide {
+					n = tile[(r+1)*TileSide+c]
+				} else if north != nil {
+					n = north[c]
+				}
+				de, dn := math.Sqrt(e)-root, math.Sqrt(n)-root
+				je += float64(de * de)
+				jn += float64(dn * dn)
+			}
+		}
+	}
+	return b.Lattice.SpacingM / (2 * math.Sqrt(math.Max(je, jn)))
+}
+
+// Spacing is at most fineScale of the belief's scale where the budget allows;
+// it doubles when twice the spacing would still be below coarseScale. The gap
+// between the two keeps it from swinging.
+const (
+	fineScale   = 0.4
+	coarseScale = 0.3
+)
+
+// Adapt halves or doubles the spacing of a lattice belief so that it follows
+// the belief's own width, within a budget of cells, keeping mass and mean;
+// the variance that a change of spacing adds is kept as the tiles' surplus
+// and taken back from the next spread. It does nothing to beliefs with
+// quantities. It reports whether anything changed.
+func Adapt(b *Belief, maxCells int, w *Workspace) bool {
+	if len(b.Quantities) > 0 || len(b.Tiles.At) == 0 {
+		return false
+	}
+	scale := b.ScaleM()
+	h := b.Lattice.SpacingM
+	switch {
+	case h > fineScale*scale && 4*b.occupiedCells() <= maxCells:
+		b.refine(&w.tiles)
+		return true
+	case 2*h < coarseScale*scale || b.occupiedCells() > maxCells:
+		b.coarsen(&w.tiles)
+		return true
+	}
+	return false
+}
+
+func (b *Belief) occupiedCells() int {
+	n := 0
+	for _, v := range b.Tiles.Mass {
+		if v > 0 {
+			n++
+		}
+	}
+	return n
+}
+
+// Cells returns how many cells or Gaussians carry mass.
+func (b *Belief) Cells() int {
+	if len(b.Quantities) > 0 {
+		return len(b.Key)
+	}
+	return b.occupiedCells()
+}
+
+// refine doubles the resolution: each cell's mass goes to the nine nearest
+// points of the finer lattice with weights 1/4, 1/2, 1/4 along each axis,
+// which keeps the mean and adds h²/8 of variance an axis (h the old spacing).
+func (b *Belief) refine(ts *tileSpace) {
+	before := b.latticeMoments()
+	h := b.Lattice.SpacingM
+	src := b.Tiles
+	dst := &ts.spare
+	// Finer tiles: each old one becomes four, and its border leans one cell
+	// over on every side.
+	ts.cover(src.At, func(t TileAt) (lo, hi TileAt) {
+		c, r := 2*t.Col*TileSide, 2*t.Row*TileSide
+		return TileAt{c - 1, r - 1}, TileAt{c + 2*TileSide - 1, r + 2*TileSide - 1}
+	})
+	weight := [3]float64{0.25, 0.5, 0.25}
+	for i, at := range src.At {
+		for x, v := range src.tile(i) {
+			if v == 0 {
+				continue
+			}
+			col := 2 * (at.Col*TileSide + int32(x%TileSide))
+			row := 2 * (at.Row*TileSide + int32(x/TileSide))
+			for dr := range int32(3) {
+				for dc := range int32(3) {
+					dst.add(ts, col+dc-1, row+dr-1, float64(v*float64(weight[dr]*weight[dc])))
+				}
+			}
+		}
+	}
+	b.swap(ts, Lattice{b.Lattice.Origin, h / 2}, before)
+}
+
+// coarsen halves the resolution: four cells become one at their middle. The
+// error in the mean moves the origin, that in the variance becomes surplus.
+func (b *Belief) coarsen(ts *tileSpace) {
+	before := b.latticeMoments()
+	h := b.Lattice.SpacingM
+	src := b.Tiles
+	dst := &ts.spare
+	ts.cover(src.At, func(t TileAt) (lo, hi TileAt) {
+		c, r := floorDiv(t.Col*TileSide, 2), floorDiv(t.Row*TileSide, 2)
+		return TileAt{c, r}, TileAt{c + TileSide/2 - 1, r + TileSide/2 - 1}
+	})
+	for i, at := range src.At {
+		for x, v := range src.tile(i) {
+			if v != 0 {
+				col := at.Col*TileSide + int32(x%TileSide)
+				row := at.Row*TileSide + int32(x/TileSide)
+				dst.add(ts, floorDiv(col, 2), floorDiv(row, 2), v)
+			}
+		}
+	}
+	origin := b.Lattice.Origin.Add(geo.Point{E: h / 2, N: h / 2})
+	b.swap(ts, Lattice{origin, 2 * h}, before)
+}
+
+// moments of the lattice's masses, unnormalised surplus included.
+type latticeMoments struct {
+	mass       float64
+	mean       geo.Point
+	ee, en, nn float64
+}
+
+func (b *Belief) latticeMoments() (m latticeMoments) {
+	for i, at := range b.Tiles.At {
+		for x, v := range b.Tiles.tile(i) {
+			if v != 0 {
+				m.mass += v
+				m.mean.E += float64(v * float64(at.Col*TileSide+int32(x%TileSide)))
+				m.mean.N += float64(v * float64(at.Row*TileSide+int32(x/TileSide)))
+			}
+		}
+	}
+	if m.mass == 0 {
+		return m
+	}
+	m.mean.E /= m.mass
+	m.mean.N /= m.mass
+	for i, at := range b.Tiles.At {
+		for x, v := range b.Tiles.tile(i) {
+			if v != 0 {
+				de := float64(at.Col*TileSide+int32(x%TileSide)) - m.mean.E
+				dn := float64(at.Row*TileSide+int32(x/TileSide)) - m.mean.N
+				m.ee += float64(v * float64(de*de))
+				m.en += float64(v * float64(de*dn))
+				m.nn += float64(v * float64(dn*dn))
+			}
+		}
+	}
+	h := b.Lattice.SpacingM
+	m.ee *= h * h / m.mass
+	m.en *= h * h / m.mass
+	m.nn *= h * h / m.mass
+	m.mean = geo.Point{E: b.Lattice.Origin.E + h*m.mean.E, N: b.Lattice.Origin.N + h*m.mean.N}
+	return m
+}
+
+// swap installs the new tiles over a new lattice, with the mean of before and
+// the change of variance as surplus.
+func (b *Belief) swap(ts *tileSpace, l Lattice, before latticeMoments) {
+	surplus := b.Tiles.Surplus
+	b.Tiles, ts.spare = ts.spare, b.Tiles
+	b.Lattice = l
+	b.dropTiles()
+	after := b.latticeMoments()
+	b.Lattice.Origin = b.Lattice.Origin.Add(before.mean.Sub(after.mean))
+	b.Tiles.Surplus = [3]float64{
+		surplus[0] + after.ee - before.ee,
+		surplus[1] + after.en - before.en,
+		surplus[2] + after.nn - before.nn,
+	}
+}
+
+// cover sets ts.spare to empty tiles over the cells that span gives for each
+// tile, and ts.index to them.
+func (ts *tileSpace) cover(tiles []TileAt, span func(TileAt) (lo, hi TileAt)) {
+	if ts.index == nil {
+		ts.index = map[TileAt]int32{}
+	}
+	clear(ts.index)
+	at := ts.spare.At[:0]
+	for _, t := range tiles {
+		lo, hi := span(t)
+		for r := floorDiv(lo.Row, TileSide); r <= floorDiv(hi.Row, TileSide); r++ {
+			for c := floorDiv(lo.Col, TileSide); c <= floorDiv(hi.Col, TileSide); c++ {
+				at = append(at, TileAt{c, r})
+			}
+		}
+	}
+	ts.spare.At = sortedTiles(at)
+	for i, t := range ts.spare.At {
+		ts.index[t] = int32(i)
+	}
+	ts.spare.Mass = resize(ts.spare.Mass, len(ts.spare.At)*tileCells)
+	clear(ts.spare.Mass)
+}
+
+// add adds mass to a cell; its tile must be in ts.index.
+func (t *Tiles) add(ts *tileSpace, col, row int32, v float64) {
+	tc, tr := floorDiv(col, TileSide), floorDiv(row, TileSide)
+	i := int(ts.index[TileAt{tc, tr}])
+	t.Mass[i*tileCells+int((row-tr*TileSide)*TileSide+col-tc*TileSide)] += v
+}

@@ -1,0 +1,112 @@
+package filter
+
+import (
+	"math"
+
+	"leadline/engine/geo"
+)
+
+// Read spells a belief out into dst, for those who read it.
+func (b *Belief) Read(dst *Cloud, space Space, w *Workspace) {
+	k := len(b.Quantities)
+	if k == 0 {
+		b.readTiles(dst)
+		return
+	}
+	n := len(b.Key)
+	w.locate(b, space, WantPosition)
+	for _, s := range []*[]float64{&dst.East, &dst.North, &dst.Mass, &dst.VarEE, &dst.VarEN, &dst.VarNN} {
+		*s = resize(*s, n)
+	}
+	copy(dst.East, w.at.East)
+	copy(dst.North, w.at.North)
+	copy(dst.Mass, b.Mass)
+	dst.Mean = append(dst.Mean[:0], b.Mean...)
+	p := k * (k + 1) / 2
+	dst.Chart, dst.AlongM, dst.VarM2 = dst.Chart[:0], dst.AlongM[:0], dst.VarM2[:0]
+	for i := range n {
+		if b.Dim == 2 {
+			dst.VarEE[i], dst.VarEN[i], dst.VarNN[i] = b.Cov[i*p], b.Cov[i*p+1], b.Cov[i*p+2]
+			continue
+		}
+		v, te, tn := b.Cov[i*p], w.at.TangentE[i], w.at.TangentN[i]
+		dst.VarEE[i] = float64(v * float64(te*te))
+		dst.VarEN[i] = float64(v * float64(te*tn))
+		dst.VarNN[i] = float64(v * float64(tn*tn))
+		dst.Chart = append(dst.Chart, w.chart[i])
+		dst.AlongM = append(dst.AlongM, w.along[i])
+		dst.VarM2 = append(dst.VarM2, v)
+	}
+}
+
+func (b *Belief) readTiles(dst *Cloud) {
+	*dst = Cloud{East: dst.East[:0], North: dst.North[:0], Mass: dst.Mass[:0], VarEE: dst.VarEE[:0], VarEN: dst.VarEN[:0], VarNN: dst.VarNN[:0]}
+	// A cell stands for its square only where the lattice is coarse; where it
+	// is fine, the masses' own variance is the belief's. What changing the
+	// spacing added comes off, as far as a cell has it.
+	h := b.Lattice.SpacingM
+	within := 0.0
+	if h > fineScale*b.ScaleM() {
+		within = h * h / 12
+	}
+	ee := math.Max(0, within-b.Tiles.Surplus[0])
+	nn := math.Max(0, within-b.Tiles.Surplus[2])
+	for i, at := range b.Tiles.At {
+		for x, v := range b.Tiles.tile(i) {
+			if v == 0 {
+				continue
+			}
+			c := b.Lattice.Centre(at.Col*TileSide+int32(x%TileSide), at.Row*TileSide+int32(x/TileSide))
+			dst.East = append(dst.East, c.E)
+			dst.North = append(dst.North, c.N)
+			dst.Mass = append(dst.Mass, v)
+			dst.VarEE = append(dst.VarEE, ee)
+			dst.VarEN = append(dst.VarEN, 0)
+			dst.VarNN = append(dst.VarNN, nn)
+		}
+	}
+}
+
+// Moments returns mass, mean and covariance (EE, EN, NN, m²) of the position,
+// exactly as Predict keeps them: the variance within cells included and the
+// surplus of a lattice taken off.
+func (b *Belief) Moments(space Space, w *Workspace) (mass float64, mean geo.Point, cov [3]float64) {
+	if len(b.Quantities) == 0 {
+		m := b.latticeMoments()
+		s := b.Tiles.Surplus
+		return m.mass, m.mean, [3]float64{m.ee - s[0], m.en - s[1], m.nn - s[2]}
+	}
+	var c Cloud
+	b.Read(&c, space, w)
+	// Relative to the first entry, so that far-off frames cost no digits.
+	o := geo.Point{E: c.East[0], N: c.North[0]}
+	for i, m := range c.Mass {
+		mass += m
+		mean.E += float64(m * (c.East[i] - o.E))
+		mean.N += float64(m * (c.North[i] - o.N))
+	}
+	mean.E /= mass
+	mean.N /= mass
+	for i, m := range c.Mass {
+		de, dn := c.East[i]-o.E-mean.E, c.North[i]-o.N-mean.N
+		cov[0] += float64(m * (c.VarEE[i] + float64(de*de)))
+		cov[1] += float64(m * (c.VarEN[i] + float64(de*dn)))
+		cov[2] += float64(m * (c.VarNN[i] + float64(dn*dn)))
+	}
+	for i := range cov {
+		cov[i] /= mass
+	}
+	return mass, mean.Add(o), cov
+}
+
+// Clone returns a copy that shares nothing that changes.
+func (b *Belief) Clone() *Belief {
+	c := *b
+	c.Key = append([]uint64(nil), b.Key...)
+	c.Mass = append([]float64(nil), b.Mass...)
+	c.Mean = append([]float64(nil), b.Mean...)
+	c.Cov = append([]float64(nil), b.Cov...)
+	c.Tiles.At = append([]TileAt(nil), b.Tiles.At...)
+	c.Tiles.Mass = append([]float64(nil), b.Tiles.Mass...)
+	return &c
+}

@@ -1,0 +1,174 @@
+package filter
+
+import (
+	"math"
+	"math/bits"
+
+	"leadline/engine/geo"
+)
+
+// maxPerCell bounds perCell.
+const maxPerCell = 16
+
+// perCell is how many Gaussians one cell may hold. On lines, with one,
+// headings a quarter turn apart would merge and the truth be lost at the
+// first corner; on a plane the heading may be anything.
+func perCell(dim int) int {
+	if dim == 1 {
+		return 3
+	}
+	return maxPerCell
+}
+
+// mergeAngleRad is the difference of an angular quantity below which two
+// Gaussians of one cell are the same story. It is well under the 45° that
+// tells two roads at a junction apart, and above the spread of headings along
+// one road.
+const mergeAngleRad = 0.25
+
+// merger sorts Gaussians by cell and merges those of one cell.
+type merger struct {
+	order, spare []int32
+}
+
+// merge writes the Gaussians of src into dst (which it empties first), in
+// ascending order of cell, merged by moments so that each cell holds at most
+// most. trace, if not nil, gets for each entry of src the entry of
+// dst it went into.
+func (m *merger) merge(dst, src *Gaussians, k int, angular uint, most int, trace []int32) {
+	dst.reset()
+	m.sort(src.Key)
+	n := len(src.Key)
+	var groups [maxPerCell]gaussian
+	member := make([]int8, 0, 16)
+	for a := 0; a < n; {
+		key := src.Key[m.order[a]]
+		b := a + 1
+		for b < n && src.Key[m.order[b]] == key {
+			b++
+		}
+		cell := m.order[a:b]
+		a = b
+		// Heavy ones first, so that they, not crumbs, found the groups.
+		for i := 1; i < len(cell); i++ {
+			for j := i; j > 0 && src.Mass[cell[j]] > src.Mass[cell[j-1]]; j-- {
+				cell[j], cell[j-1] = cell[j-1], cell[j]
+			}
+		}
+		used := 0
+		member = member[:0]
+		for _, i := range cell {
+			var g gaussian
+			src.load(&g, int(i), k)
+			best := nearest(&groups, used, most, &g, k, angular)
+			if best < 0 {
+				best = used
+				groups[used] = g
+				used++
+			} else {
+				groups[best].absorb(k, &g, angular)
+			}
+			member = append(member, int8(best))
+		}
+		if trace != nil {
+			for j, i := range cell {
+				trace[i] = int32(len(dst.Key)) + int32(member[j])
+			}
+		}
+		for i := range used {
+			for q := range k {
+				if angular>>uint(q)&1 != 0 {
+					groups[i].mean[q] = geo.WrapPi(groups[i].mean[q])
+				}
+			}
+			dst.push(key, k, &groups[i])
+		}
+	}
+}
+
+// nearest returns the group that g belongs to, or -1 if it founds one.
+func nearest(groups *[maxPerCell]gaussian, used, most int, g *gaussian, k int, angular uint) int {
+	if used == 0 {
+		return -1
+	}
+	if angular == 0 {
+		return 0
+	}
+	best, least := -1, math.Inf(1)
+	for i := range used {
+		d := 0.0
+		for q := range k {
+			if angular>>uint(q)&1 != 0 {
+				d = math.Max(d, math.Abs(geo.WrapPi(g.mean[q]-groups[i].mean[q])))
+			}
+		}
+		if d < least {
+			best, least = i, d
+		}
+	}
+	if least > mergeAngleRad && used < most {
+		return -1
+	}
+	return best
+}
+
+// load copies entry i, with k quantities.
+func (c *Gaussians) load(g *gaussian, i, k int) {
+	g.mass = c.Mass[i]
+	copy(g.mean[:], c.Mean[i*k:i*k+k])
+	p := k * (k + 1) / 2
+	copy(g.cov[:], c.Cov[i*p:i*p+p])
+}
+
+// sort sets m.order to the stable ascending order of the keys: insertion for
+// few, else a radix sort over the bits in which the keys differ, linear in
+// their number.
+func (m *merger) sort(keys []uint64) {
+	n := len(keys)
+	if cap(m.order) < n {
+		m.order = make([]int32, n+n/4)
+		m.spare = make([]int32, n+n/4)
+	}
+	m.order, m.spare = m.order[:n], m.spare[:n]
+	for i := range m.order {
+		m.order[i] = int32(i)
+	}
+	if n <= 64 {
+		for i := 1; i < n; i++ {
+			o := m.order[i]
+			j := i
+			for ; j > 0 && keys[m.order[j-1]] > keys[o]; j-- {
+				m.order[j] = m.order[j-1]
+			}
+			m.order[j] = o
+		}
+		return
+	}
+	var differ uint64
+	for _, key := range keys {
+		differ |= key ^ keys[0]
+	}
+	const digit = 11
+	for shift := 0; shift < 64; shift += digit {
+		skip := bits.TrailingZeros64(differ >> uint(shift))
+		if differ>>uint(shift) == 0 {
+			break
+		}
+		shift += skip
+		var count [1 << digit]int32
+		for _, key := range keys {
+			count[key>>uint(shift)&(1<<digit-1)]++
+		}
+		at := int32(0)
+		for i, c := range count {
+			count[i] = at
+			at += c
+		}
+		for _, o := range m.order {
+			d := keys[o] >> uint(shift) & (1<<digit - 1)
+			m.spare[count[d]] = o
+			count[d]++
+		}
+		m.order, m.spare = m.spare, m.order
+	}
+}

@@ -1,0 +1,310 @@
+package filter
+
+import (
+	"fmt"
+	"math"
+)
+
+// Floor is the mass below which a Gaussian or a lattice cell is dropped, and
+// counted as pruned. Over an hour of 10 Hz steps with a few hundred Gaussians
+// it costs below 1e-6 of the mass.
+const Floor = 1e-12
+
+// foldSigmas is where splitting a wide Gaussian stops: what lies beyond goes
+// into the outermost piece, so that mass, mean and variance stay exact.
+const foldSigmas = 3.5
+
+// Workspace is the memory of Predict and Update, kept between steps. The zero
+// value is ready; one goroutine owns it.
+type Workspace struct {
+	at     Columns
+	out    Gaussians
+	merger merger
+	trace  *Trace
+	source []int32
+	into   []int32
+
+	chart         []int32
+	along         []float64
+	add, f        []float64
+	terms         Terms
+	logs, scratch []float64
+	tiles         tileSpace
+}
+
+// Trace is what one Predict did: mass Weight·(mass of Source) went into
+// Target. A source's weights sum to 1 less what was pruned or left the map.
+type Trace struct {
+	Source, Target []int32
+	Weight         []float64
+	// Predicted is the number of targets; Kept are the targets that the
+	// updates since then have left, in the order of the belief.
+	Predicted int
+	Kept      []int32
+}
+
+// Record makes the next calls of Predict with this workspace fill t (nil
+// stops it). Only beliefs of Gaussians are traced.
+func (w *Workspace) Record(t *Trace) { w.trace = t }
+
+// Predict moves a belief in place by one step.
+//
+// Each Gaussian moves whole, x' = F x + Add, and gains covariance Q; its mean
+// then decides in which cell it is at home. Only when its position is wider
+// than half a cell is it cut at the cell edges, each piece with the mass,
+// mean and covariance of the truncated Gaussian, so that mass, mean and
+// variance of the whole are kept. Gaussians that meet in a cell merge by
+// moments. On a plane without quantities the lattice's origin takes the
+// displacement and the masses spread by kernels of exactly the variance asked
+// for. The cost is linear in the occupied cells.
+//
+// At the end of a line the links share the mass out; where there are none it
+// has left the map and is counted in b.LeftMap. The masses then sum to less
+// than 1 until the next Update.
+//
+// The belief must have been seeded over the same space; another one, or a
+// step of the wrong size, is a mistake of the caller and panics.
+func Predict(b *Belief, space Space, step Step, w *Workspace) {
+	k := len(b.Quantities)
+	if want := max(k, b.Dim); len(step.Add) != want || len(step.Q) != want*(want+1)/2 || step.F != nil && len(step.F) != want*want {
+		panic(fmt.Sprintf("filter: step over %d quantities for a belief over %d", len(step.Add), want))
+	}
+	if b.Map != space.Fingerprint() {
+		panic("filter: the belief was seeded over another map")
+	}
+	if k == 0 {
+		b.predictTiles(step, w)
+		return
+	}
+	mv := mover{k: k, dim: b.Dim, step: step, out: &w.out, angular: angularMask(b.Quantities)}
+	mv.out.reset()
+	w.source = w.source[:0]
+	if b.Dim == 1 {
+		mv.lines = space.(LineSpace).Lines(b.Level)
+	} else {
+		mv.lattice = b.Lattice
+	}
+	if step.Local != nil {
+		w.locate(b, space, step.Local.Wants())
+		n := len(b.Key)
+		w.add = resize(w.add, n*b.Dim)
+		w.f = resize(w.f, n*b.Dim*k)
+		step.Local.Local(w.add, w.f, &w.at, b.Mean)
+		mv.stepAdd = append([]float64(nil), step.Add...)
+		mv.stepF = make([]float64, k*k)
+		for d := range k {
+			mv.stepF[d*k+d] = 1
+		}
+		if step.F != nil {
+			copy(mv.stepF, step.F)
+		}
+	}
+	for i := range b.Key {
+		var g gaussian
+		b.load(&g, i, k)
+		f, add := step.F, step.Add
+		if step.Local != nil {
+			copy(mv.stepAdd, w.add[i*b.Dim:(i+1)*b.Dim])
+			copy(mv.stepF, w.f[i*b.Dim*k:(i+1)*b.Dim*k])
+			f, add = mv.stepF, mv.stepAdd
+		}
+		g.advance(k, f, add, step.Q)
+		if b.Dim == 1 {
+			chart, cell := LineCell(b.Key[i])
+			mv.line(chart, cell, &g)
+		} else {
+			col, row := Cell(b.Key[i])
+			mv.plane(col, row, &g)
+		}
+		for len(w.source) < len(mv.out.Key) {
+			w.source = append(w.source, int32(i))
+		}
+	}
+	b.Pruned += mv.pruned
+	b.LeftMap += mv.left
+	var into []int32
+	if w.trace != nil {
+		w.into = resize(w.into, len(w.source))
+		into = w.into
+		w.trace.fill(b, &w.out, w.source)
+	}
+	w.merger.merge(&b.Gaussians, &w.out, k, mv.angular, perCell(b.Dim), into)
+	if w.trace != nil {
+		w.trace.Target = append(w.trace.Target[:0], into...)
+		w.trace.Predicted = len(b.Key)
+		w.trace.Kept = w.trace.Kept[:0]
+		for i := range b.Key {
+			w.trace.Kept = append(w.trace.Kept, int32(i))
+		}
+	}
+}
+
+func (t *Trace) fill(b *Belief, out *Gaussians, source []int32) {
+	t.Source = append(t.Source[:0], source...)
+	t.Weight = t.Weight[:0]
+	for j, s := range source {
+		t.Weight = append(t.Weight, out.Mass[j]/b.Mass[s])
+	}
+}
+
+func resize[T any](s []T, n int) []T {
+	if cap(s) < n {
+		return make([]T, n, n+n/4)
+	}
+	return s[:n]
+}
+
+// mover sends Gaussians to their cells.
+type mover struct {
+	k, dim       int
+	step         Step
+	stepAdd      []float64
+	stepF        []float64
+	angular      uint
+	lines        *Lines
+	lattice      Lattice
+	out          *Gaussians
+	pruned, left float64
+}
+
+// line sends a Gaussian whose position is relative to the centre of a cell of
+// a chart.
+func (mv *mover) line(chart, cell int32, g *gaussian) {
+	h := mv.lines.WidthM[chart]
+	pos := float64((float64(cell)+0.5)*h) + g.mean[0]
+	sigma := math.Sqrt(g.cov[0])
+	if sigma <= 0.5*h {
+		mv.place(chart, pos, g, g.mass, 0)
+		return
+	}
+	first := math.Floor((pos - foldSigmas*sigma) / h)
+	last := math.Floor((pos + foldSigmas*sigma) / h)
+	left := edge{z: math.Inf(-1)}
+	for j := first; j <= last; j++ {
+		right := edge{z: math.Inf(1)}
+		if j < last {
+			right = edgeAt((float64((j+1)*h) - pos) / sigma)
+		}
+		if c := between(left, right); c.share > 0 {
+			piece := g.truncate(mv.k, 0, c)
+			// A folded tail may have its mean beyond its cell: it is at home
+			// where its mean is.
+			mv.place(chart, pos+float64(sigma*c.mean), &piece, piece.mass, 0)
+		}
+		left = right
+	}
+}
+
+// placeDepth bounds how many short edges one step may cross.
+const placeDepth = 64
+
+// place puts a Gaussian at a position along a chart, or beyond its ends.
+func (mv *mover) place(chart int32, pos float64, g *gaussian, mass float64, depth int) {
+	ln := mv.lines
+	length := ln.LengthM[chart]
+	if pos >= 0 && pos < length || depth == placeDepth {
+		if mass < Floor {
+			mv.pruned += mass
+			return
+		}
+		cell := int32(math.Min(math.Max(pos/ln.WidthM[chart], 0), float64(ln.Cells[chart]-1)))
+		r := *g
+		r.mass = mass
+		r.mean[0] = pos - float64((float64(cell)+0.5)*ln.WidthM[chart])
+		mv.out.push(LineKey(chart, cell), mv.k, &r)
+		return
+	}
+	links, beyond := &ln.Forward, pos-length
+	if pos < 0 {
+		links, beyond = &ln.Backward, pos
+	}
+	to, weight := links.Of(chart)
+	if len(to) == 0 {
+		mv.left += mass
+		return
+	}
+	if mass < Floor {
+		mv.pruned += mass
+		return
+	}
+	for i, next := range to {
+		p := beyond
+		if pos < 0 {
+			p += ln.LengthM[next]
+		}
+		mv.place(next, p, g, float64(mass*weight[i]), depth+1)
+	}
+}
+
+// plane sends a Gaussian whose position is relative to the centre of a
+// lattice cell: across columns first, then each piece across rows.
+func (mv *mover) plane(col, row int32, g *gaussian) {
+	mv.split(0, col, g, func(col int32, g *gaussian) {
+		mv.split(1, row, g, func(row int32, g *gaussian) {
+			if g.mass < Floor {
+				mv.pruned += g.mass
+				return
+			}
+			mv.out.push(CellKey(col, row), mv.k, g)
+		})
+	})
+}
+
+// split cuts a Gaussian at the cell edges of axis d if it is wide there.
+func (mv *mover) split(d int, cell int32, g *gaussian, emit func(int32, *gaussian)) {
+	h := mv.lattice.SpacingM
+	sigma := math.Sqrt(g.cov[Packed(d, d)])
+	home := func(r *gaussian) {
+		n := math.Floor(r.mean[d]/h + 0.5)
+		r.mean[d] -= float64(n * h)
+		emit(cell+int32(n), r)
+	}
+	if sigma <= 0.5*h {
+		r := *g
+		home(&r)
+		return
+	}
+	first := math.Floor((g.mean[d]-foldSigmas*sigma)/h + 0.5)
+	last := math.Floor((g.mean[d]+foldSigmas*sigma)/h + 0.5)
+	left := edge{z: math.Inf(-1)}
+	for j := first; j <= last; j++ {
+		right := edge{z: math.Inf(1)}
+		if j < last {
+			right = edgeAt((float64((j+0.5)*h) - g.mean[d]) / sigma)
+		}
+		if c := between(left, right); c.share > 0 {
+			piece := g.truncate(mv.k, d, c)
+			home(&piece)
+		}
+		left = right
+	}
+}
+
+// locate fills w.at with the columns at the Gaussians' positions.
+func (w *Workspace) locate(b *Belief, space Space, wants Wants) {
+	n, k := len(b.Key), len(b.Quantities)
+	w.at.Resize(wants, b.Dim, n)
+	if b.Dim == 1 {
+		ls := space.(LineSpace)
+		lines := ls.Lines(b.Level)
+		w.chart = resize(w.chart, n)
+		w.along = resize(w.along, n)
+		widest := 0.0
+		for i, key := range b.Key {
+			chart, cell := LineCell(key)
+			h := lines.WidthM[chart]
+			widest = math.Max(widest, h)
+			w.chart[i] = chart
+			w.along[i] = float64((float64(cell)+0.5)*h) + b.Mean[i*k]
+		}
+		ls.Sample(&w.at, w.chart, w.along, widest)
+		return
+	}
+	for i, key := range b.Key {
+		col, row := Cell(key)
+		c := b.Lattice.Centre(col, row)
+		w.at.East[i] = c.E + b.Mean[i*k]
+		w.at.North[i] = c.N + b.Mean[i*k+1]
+	}
+	space.(PlaneSpace).Sample(&w.at)
+}

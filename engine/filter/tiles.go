@@ -1,0 +1,313 @@
+package filter
+
+import (
+	"cmp"
+	"math"
+	"slices"
+
+	"leadline/engine/geo"
+	"leadline/engine/kernel"
+)
+
+const tileCells = TileSide * TileSide
+
+// cellFloor is the mass of a lattice cell below which it is set to zero, and
+// counted: a hundredth of Floor, since a lattice has many cells a tail.
+const cellFloor = Floor / 100
+
+// tileSpace is the memory for working on tiles.
+type tileSpace struct {
+	spare Tiles
+	index map[TileAt]int32
+	taps  taps
+	order []int32
+}
+
+// tile returns the masses of tile i.
+func (t *Tiles) tile(i int) []float64 { return t.Mass[i*tileCells : (i+1)*tileCells] }
+
+// find returns the index of a tile, or -1.
+func (t *Tiles) find(at TileAt) int {
+	i, ok := slices.BinarySearchFunc(t.At, at, compareTiles)
+	if !ok {
+		return -1
+	}
+	return i
+}
+
+func compareTiles(a, b TileAt) int {
+	if a.Row != b.Row {
+		return cmp.Compare(a.Row, b.Row)
+	}
+	return cmp.Compare(a.Col, b.Col)
+}
+
+// floorDiv is a/n rounded down.
+func floorDiv(a, n int32) int32 {
+	q := a / n
+	if a%n < 0 {
+		q--
+	}
+	return q
+}
+
+// predictTiles moves the origin and spreads the masses.
+func (b *Belief) predictTiles(step Step, w *Workspace) {
+	if step.Local != nil {
+		panic("filter: position-dependent motion needs a belief with quantities")
+	}
+	b.Lattice.Origin = b.Lattice.Origin.Add(geo.Point{E: step.Add[0], N: step.Add[1]})
+	s := &b.Tiles.Surplus
+	q := [3]float64{step.Q[0] - s[0], step.Q[1] - s[1], step.Q[2] - s[2]}
+	if !psd(q[0], q[1], q[2]) {
+		// The lattice is already wider than it should be: owe the less.
+		*s = [3]float64{-q[0], -q[1], -q[2]}
+		return
+	}
+	*s = [3]float64{}
+	h2 := b.Lattice.SpacingM * b.Lattice.SpacingM
+	u, lambda, n := directions(q[0]/h2, q[1]/h2, q[2]/h2)
+	for i := range n {
+		w.tiles.taps.col, w.tiles.taps.row = u[i][0], u[i][1]
+		w.tiles.taps.weight = discreteNormal(w.tiles.taps.weight, lambda[i])
+		b.spread(&w.tiles)
+	}
+}
+
+// spread convolves the masses with ts.taps.
+func (b *Belief) spread(ts *tileSpace) {
+	src, dst := &b.Tiles, &ts.spare
+	reach := int32(len(ts.taps.weight) - 1)
+	ts.dilate(src, reach*abs32(ts.taps.col), reach*abs32(ts.taps.row), &b.Pruned)
+	dst.Mass = resize(dst.Mass, len(dst.At)*tileCells)
+	clear(dst.Mass)
+	for i, at := range dst.At {
+		out := dst.tile(i)
+		ts.gather(out, at, src, 0, 0, ts.taps.weight[0])
+		for n := int32(1); n <= reach; n++ {
+			weight := ts.taps.weight[n]
+			ts.gather(out, at, src, n*ts.taps.col, n*ts.taps.row, weight)
+			ts.gather(out, at, src, -n*ts.taps.col, -n*ts.taps.row, weight)
+		}
+	}
+	dst.Surplus = src.Surplus
+	b.Tiles, ts.spare = *dst, *src
+	b.dropTiles()
+}
+
+// gather adds weight times the masses at (col-dc, row-dr) to the tile at.
+func (ts *tileSpace) gather(out []float64, at TileAt, src *Tiles, dc, dr int32, weight float64) {
+	col0 := at.Col*TileSide - dc
+	row0 := at.Row*TileSide - dr
+	tc, tr := floorDiv(col0, TileSide), floorDiv(row0, TileSide)
+	oc, or := int(col0-tc*TileSide), int(row0-tr*TileSide)
+	for half := range int32(2) { // the rows lie in up to two tiles
+		r0, r1 := 0, TileSide-or // rows of out
+		if half == 1 {
+			r0, r1 = TileSide-or, TileSide
+		}
+		if r0 >= r1 {
+			continue
+		}
+		for side := range int32(2) {
+			c0, c1 := 0, TileSide-oc
+			if side == 1 {
+				c0, c1 = TileSide-oc, TileSide
+			}
+			if c0 >= c1 {
+				continue
+			}
+			j, ok := ts.index[TileAt{tc + side, tr + half}]
+			if !ok {
+				continue
+			}
+			from := src.tile(int(j))
+			for r := r0; r < r1; r++ {
+				sr := (r + or) % TileSide
+				sc := (c0 + oc) % TileSide
+				a := from[sr*TileSide+sc : sr*TileSide+sc+c1-c0]
+				o := out[r*TileSide+c0 : r*TileSide+c1]
+				for x, v := range a {
+					o[x] += float64(weight * v)
+				}
+			}
+		}
+	}
+}
+
+// dilate sets ts.spare.At to the tiles that mass of src can reach within
+// (dc, dr) cells, and ts.index to the tiles of src.
+func (ts *tileSpace) dilate(src *Tiles, dc, dr int32, pruned *float64) {
+	if ts.index == nil {
+		ts.index = map[TileAt]int32{}
+	}
+	clear(ts.index)
+	at := ts.spare.At[:0]
+	for i, t := range src.At {
+		ts.index[t] = int32(i)
+		lo, hi, any := occupied(src.tile(i))
+		if !any {
+			continue
+		}
+		for r := floorDiv(lo.Row-dr, TileSide); r <= floorDiv(hi.Row+dr, TileSide); r++ {
+			for c := floorDiv(lo.Col-dc, TileSide); c <= floorDiv(hi.Col+dc, TileSide); c++ {
+				at = append(at, TileAt{t.Col + c, t.Row + r})
+			}
+		}
+	}
+	ts.spare.At = sortedTiles(at)
+}
+
+// sortedTiles sorts tiles and drops doubles, in place.
+func sortedTiles(at []TileAt) []TileAt {
+	slices.SortFunc(at, compareTiles)
+	return slices.Compact(at)
+}
+
+// occupied returns the first and last column and row with mass.
+func occupied(tile []float64) (lo, hi TileAt, any bool) {
+	lo, hi = TileAt{TileSide, TileSide}, TileAt{-1, -1}
+	for r := range int32(TileSide) {
+		for c, v := range tile[r*TileSide : (r+1)*TileSide] {
+			if v > 0 {
+				lo.Col, hi.Col = min(lo.Col, int32(c)), max(hi.Col, int32(c))
+				lo.Row, hi.Row = min(lo.Row, r), max(hi.Row, r)
+			}
+		}
+	}
+	return lo, hi, hi.Row >= 0
+}
+
+// dropTiles zeroes cells below cellFloor, removes empty tiles and counts what
+// goes.
+func (b *Belief) dropTiles() {
+	t := &b.Tiles
+	j := 0
+	for i := range t.At {
+		tile := t.tile(i)
+		any := false
+		for x, v := range tile {
+			if v >= cellFloor {
+				any = true
+			} else if v > 0 {
+				b.Pruned += v
+				tile[x] = 0
+			}
+		}
+		if !any {
+			continue
+		}
+		if i != j {
+			t.At[j] = t.At[i]
+			copy(t.tile(j), tile)
+		}
+		j++
+	}
+	t.At, t.Mass = t.At[:j], t.Mass[:j*tileCells]
+}
+
+// updateTiles weighs the lattice's cells.
+func (b *Belief) updateTiles(space PlaneSpace, l any, w *Workspace) (float64, error) {
+	t := &b.Tiles
+	w.logs = resize(w.logs, len(t.Mass))
+	clear(w.logs)
+	h := b.Lattice.SpacingM
+	within := h * h / 12
+	var nw noiseWork
+	lin, linear := l.(LinearLikelihood)
+	like, plain := l.(Likelihood)
+	wants := WantPosition
+	switch {
+	case linear:
+		noise := lin.Noise()
+		nw = newNoiseWork(&noise, lin.Rows())
+		wants |= lin.Wants()
+	case plain:
+		wants |= like.Wants()
+	default:
+		panic("filter: not a likelihood")
+	}
+	for i := range t.At {
+		logs := w.logs[i*tileCells : (i+1)*tileCells]
+		w.at.Resize(wants, 2, tileCells)
+		b.Lattice.points(&w.at, t.At[i])
+		space.Sample(&w.at)
+		if !linear {
+			like.LogLikelihood(logs, &w.at)
+			continue
+		}
+		m := lin.Rows()
+		w.terms.resize(tileCells, m, 2)
+		lin.Linearize(&w.terms, &w.at, nil, nil)
+		for x, mass := range t.tile(i) {
+			if mass == 0 {
+				continue
+			}
+			logs[x] = nw.density(&w.terms, x, within)
+		}
+	}
+	logEvidence, err := weigh(t.Mass, w.logs)
+	if err != nil {
+		return logEvidence, err
+	}
+	before := b.Pruned
+	b.dropTiles()
+	if lost := b.Pruned - before; lost > 0 {
+		scale := 1 / (1 - lost)
+		for i := range t.Mass {
+			t.Mass[i] *= scale
+		}
+	}
+	return logEvidence, nil
+}
+
+// points writes the centres of a tile's cells.
+func (l Lattice) points(at *Columns, t TileAt) {
+	i := 0
+	for r := range int32(TileSide) {
+		n := l.Centre(0, t.Row*TileSide+r).N
+		for c := range int32(TileSide) {
+			at.East[i] = l.Centre(t.Col*TileSide+c, 0).E
+			at.North[i] = n
+			i++
+		}
+	}
+}
+
+// density returns the log likelihood at a lattice cell whose position has the
+// variance within along each axis.
+func (w *noiseWork) density(t *Terms, i int, within float64) float64 {
+	if flat := t.Flat[i]; flat == flat {
+		return float64(w.power * flat)
+	}
+	m := w.m
+	row := t.Row[i*m*2 : (i+1)*m*2]
+	var r [2]float64
+	copy(r[:], t.Residual[i*m:(i+1)*m])
+	p := sym2{a: float64(within * (float64(row[0]*row[0]) + float64(row[1]*row[1])))}
+	if m == 2 {
+		p.b = float64(within * (float64(row[0]*row[2]) + float64(row[1]*row[3])))
+		p.c = float64(within * (float64(row[2]*row[2]) + float64(row[3]*row[3])))
+	}
+	if len(w.parts) == 1 && math.IsInf(w.logFlat, -1) {
+		log, _ := w.part(0, p, r, t.Extra[i], w.power)
+		return float64(w.power*w.logW[0]) + log
+	}
+	var logs [maxParts]float64
+	most := w.logFlat
+	for c := range w.parts {
+		l, _ := w.part(c, p, r, t.Extra[i], w.power)
+		logs[c] = w.logW[c] + l/w.power
+		most = math.Max(most, logs[c])
+	}
+	if math.IsInf(most, -1) {
+		return most
+	}
+	sum := kernel.Exp(w.logFlat - most)
+	for c := range w.parts {
+		sum += kernel.Exp(logs[c] - most)
+	}
+	return float64(w.power * (most + kernel.Log(sum)))
+}
+
+func abs32(a int32) int32 { return max(a, -a) }

@@ -1,0 +1,329 @@
+package filter
+
+import (
+	"errors"
+	"math"
+
+	"leadline/engine/kernel"
+)
+
+// ErrContradiction is returned by Update when the measurement is impossible
+// everywhere the belief is: every log likelihood is -Inf. The belief stays as
+// it was.
+var ErrContradiction = errors.New("filter: the measurement is impossible everywhere in the belief")
+
+// Update weighs a belief by a measurement, in place, and returns the
+// measurement's log evidence, ln p(z | all before). l is a Likelihood or a
+// LinearLikelihood, which also updates each Gaussian's quantities; what is both
+// is used as the latter.
+//
+// Where a belief is a lattice without quantities, a linear likelihood is
+// evaluated at the cells' centres, with the variance of its residual over a
+// cell, |row|²h²/12, added to the noise.
+func Update(b *Belief, space Space, l any, w *Workspace) (logEvidence float64, err error) {
+	if b.Map != space.Fingerprint() {
+		panic("filter: the belief was seeded over another map")
+	}
+	if len(b.Quantities) == 0 {
+		return b.updateTiles(space.(PlaneSpace), l, w)
+	}
+	n := len(b.Key)
+	w.logs = resize(w.logs, n)
+	clear(w.logs)
+	switch l := l.(type) {
+	case LinearLikelihood:
+		w.locate(b, space, l.Wants())
+		k := len(b.Quantities)
+		m := l.Rows()
+		w.terms.resize(n, m, k)
+		l.Linearize(&w.terms, &w.at, b.Quantities, b.Mean)
+		noise := l.Noise()
+		nw := newNoiseWork(&noise, m)
+		angular := angularMask(b.Quantities)
+		// The posterior Gaussians go to the side, so that a contradiction
+		// leaves the belief alone.
+		w.out.reset()
+		for i := range n {
+			var g gaussian
+			b.load(&g, i, k)
+			w.logs[i] = nw.condition(&g, k, angular, &w.terms, i)
+			w.out.push(b.Key[i], k, &g)
+		}
+	case Likelihood:
+		w.locate(b, space, l.Wants())
+		l.LogLikelihood(w.logs, &w.at)
+	default:
+		panic("filter: not a likelihood")
+	}
+	logEvidence, err = weigh(b.Mass, w.logs)
+	if err != nil {
+		return logEvidence, err
+	}
+	if _, ok := l.(LinearLikelihood); ok {
+		b.Mean, w.out.Mean = w.out.Mean, b.Mean
+		b.Cov, w.out.Cov = w.out.Cov, b.Cov
+	}
+	b.thin(w.trace)
+	return logEvidence, nil
+}
+
+// weigh multiplies mass by exp(logs), normalises it to a sum of 1 and returns
+// the log of the sum before, relative to the sum of the masses on entry. If
+// nothing is left it returns ErrContradiction and leaves mass alone.
+func weigh(mass, logs []float64) (float64, error) {
+	most, before := math.Inf(-1), 0.0
+	for i, l := range logs {
+		if l != l || l > math.MaxFloat64 {
+			panic("filter: a likelihood returned NaN or +Inf")
+		}
+		before += mass[i]
+		if mass[i] > 0 && l > most {
+			most = l
+		}
+	}
+	if math.IsInf(most, -1) {
+		return most, ErrContradiction
+	}
+	sum := 0.0
+	for i, l := range logs {
+		logs[i] = float64(mass[i] * kernel.Exp(l-most))
+		sum += logs[i]
+	}
+	scale := 1 / sum
+	for i, v := range logs {
+		mass[i] = float64(v * scale)
+	}
+	return most + kernel.Log(sum/before), nil
+}
+
+// thin drops Gaussians below Floor and counts their mass as pruned.
+func (b *Belief) thin(t *Trace) {
+	k := len(b.Quantities)
+	p := k * (k + 1) / 2
+	j, kept := 0, 0.0
+	for i, m := range b.Mass {
+		if m < Floor {
+			b.Pruned += m
+			continue
+		}
+		if i != j {
+			b.Key[j], b.Mass[j] = b.Key[i], m
+			copy(b.Mean[j*k:j*k+k], b.Mean[i*k:i*k+k])
+			copy(b.Cov[j*p:j*p+p], b.Cov[i*p:i*p+p])
+		}
+		if t != nil && len(t.Kept) == len(b.Mass) {
+			t.Kept[j] = t.Kept[i]
+		}
+		kept += m
+		j++
+	}
+	if t != nil && len(t.Kept) == len(b.Mass) {
+		t.Kept = t.Kept[:j]
+	}
+	b.Key, b.Mass, b.Mean, b.Cov = b.Key[:j], b.Mass[:j], b.Mean[:j*k], b.Cov[:j*p]
+	for i := range b.Mass {
+		b.Mass[i] /= kept
+	}
+}
+
+func (t *Terms) resize(n, m, k int) {
+	t.Residual = resize(t.Residual, n*m)
+	t.Row = resize(t.Row, n*m*k)
+	t.Extra = resize(t.Extra, n)
+	t.Flat = resize(t.Flat, n)
+	clear(t.Row)
+	clear(t.Extra)
+	nan := math.NaN()
+	for i := range t.Flat {
+		t.Flat[i] = nan
+	}
+}
+
+// noiseWork is a Noise with what does not change from cell to cell.
+type noiseWork struct {
+	m       int
+	parts   []NoisePart
+	logW    [maxParts]float64
+	power   float64
+	logFlat float64 // ln(FlatWeight·FlatDensity), -Inf without
+	logZ    float64 // m·ln sqrt(2π)
+}
+
+const maxParts = 4
+
+func newNoiseWork(n *Noise, m int) noiseWork {
+	if len(n.Parts) == 0 || len(n.Parts) > maxParts || m < 1 || m > 2 {
+		panic("filter: a noise needs one to four parts and one or two rows")
+	}
+	w := noiseWork{m: m, parts: n.Parts, power: n.Power, logZ: float64(m) * kernel.LogSqrt2Pi}
+	if w.power == 0 {
+		w.power = 1
+	}
+	for i, p := range n.Parts {
+		w.logW[i] = kernel.Log(p.Weight)
+	}
+	w.logFlat = kernel.Log(n.FlatWeight * n.FlatDensity)
+	return w
+}
+
+// sym2 is a symmetric 2×2 matrix (a b; b c), or a alone.
+type sym2 struct{ a, b, c float64 }
+
+// logNormal returns ln N(r; 0, s) without the (2π)^-m/2, and the inverse.
+func (s sym2) logNormal(m int, r [2]float64) (log float64, inv sym2) {
+	if m == 1 {
+		inv.a = 1 / s.a
+		return -0.5 * (float64(float64(r[0]*r[0])*inv.a) + kernel.Log(s.a)), inv
+	}
+	det := float64(s.a*s.c) - float64(s.b*s.b)
+	inv = sym2{s.c / det, -s.b / det, s.a / det}
+	q := float64(float64(r[0]*r[0])*inv.a) + float64(2*r[0]*r[1]*inv.b) + float64(float64(r[1]*r[1])*inv.c)
+	return -0.5 * (q + kernel.Log(det)), inv
+}
+
+func (s sym2) logDet(m int) float64 {
+	if m == 1 {
+		return kernel.Log(s.a)
+	}
+	return kernel.Log(float64(s.a*s.c) - float64(s.b*s.b))
+}
+
+// condition updates g by the terms at i and returns the log likelihood there.
+//
+// With Power β the Gaussian parts count as N(r; 0, R)^β, which is N(r; 0,
+// R/β) times a constant; the flat part counts inside the power, ln p =
+// β ln(Σ parts + flat), where each part enters by its own marginal to the
+// power 1/β. So n steps of power 1/n give what one of power 1 gives, up to
+// what the quantities learn in between.
+func (w *noiseWork) condition(g *gaussian, k int, angular uint, t *Terms, i int) float64 {
+	if flat := t.Flat[i]; flat == flat {
+		return float64(w.power * flat)
+	}
+	m := w.m
+	rows := t.Row[i*m*k : (i+1)*m*k]
+	var r [2]float64
+	copy(r[:], t.Residual[i*m:(i+1)*m])
+	// gain = C rowᵀ (k×m), predicted variance of g(x) = row C rowᵀ.
+	var gain [2][MaxK]float64
+	var p sym2
+	for a := range m {
+		row := rows[a*k : a*k+k]
+		for x := range k {
+			s := 0.0
+			for y, v := range row {
+				if v != 0 {
+					s += float64(v * g.at(x, y))
+				}
+			}
+			gain[a][x] = s
+		}
+	}
+	for x, v := range rows[:k] {
+		p.a += float64(v * gain[0][x])
+	}
+	if m == 2 {
+		for x, v := range rows[k : 2*k] {
+			p.b += float64(v * gain[0][x])
+			p.c += float64(v * gain[1][x])
+		}
+	}
+	if len(w.parts) == 1 && math.IsInf(w.logFlat, -1) {
+		log, inv := w.part(0, p, r, t.Extra[i], w.power)
+		g.gainBy(k, m, &gain, r, inv)
+		return float64(w.power*w.logW[0]) + log
+	}
+	// Mixture: responsibilities, then one Gaussian by moments.
+	var logs [maxParts + 1]float64
+	most := w.logFlat
+	for c := range w.parts {
+		l, _ := w.part(c, p, r, t.Extra[i], w.power)
+		logs[c] = w.logW[c] + l/w.power
+		most = math.Max(most, logs[c])
+	}
+	if math.IsInf(most, -1) {
+		return most
+	}
+	n := len(w.parts)
+	logs[n] = w.logFlat
+	sum := 0.0
+	for c := range n + 1 {
+		logs[c] = kernel.Exp(logs[c] - most)
+		sum += logs[c]
+	}
+	if w.power == 1 {
+		prior := *g
+		var mix gaussian
+		for c := range n + 1 {
+			share := logs[c] / sum
+			if share < 1e-12 {
+				continue
+			}
+			post := prior
+			if c < n {
+				_, inv := w.part(c, p, r, t.Extra[i], 1)
+				post.gainBy(k, m, &gain, r, inv)
+			}
+			post.mass = share
+			if mix.mass == 0 {
+				mix = post
+			} else {
+				mix.absorb(k, &post, angular)
+			}
+		}
+		mix.mass = prior.mass
+		*g = mix
+		return most + kernel.Log(sum)
+	}
+	// One of many views of the same error: the likeliest Gaussian part
+	// updates the quantities, with its share as part of the power.
+	best := 0
+	for c := range n {
+		if logs[c] > logs[best] {
+			best = c
+		}
+	}
+	if share := logs[best] / sum; share > 1e-6 {
+		_, inv := w.part(best, p, r, t.Extra[i], float64(w.power*share))
+		g.gainBy(k, m, &gain, r, inv)
+	}
+	return float64(w.power * (most + kernel.Log(sum)))
+}
+
+// part returns the log of part c to the given power, marginalised over the
+// Gaussian (p is the variance of g(x)), without the part's weight; and the
+// inverse of the innovation covariance.
+func (w *noiseWork) part(c int, p sym2, r [2]float64, extra, power float64) (log float64, inv sym2) {
+	cov := w.parts[c].Cov
+	noise := sym2{cov[0] + extra, cov[1], cov[2] + extra}
+	s := sym2{p.a + noise.a/power, p.b + noise.b/power, p.c + noise.c/power}
+	log, inv = s.logNormal(w.m, r)
+	if power == 1 {
+		return log - w.logZ, inv
+	}
+	// N(r;0,R)^β = N(r;0,R/β)·C with ln C = (1-β)·(ln sqrt((2π)^m |R|)) - (m/2) ln β.
+	logConst := float64((1-power)*(w.logZ+0.5*noise.logDet(w.m))) - 0.5*float64(w.m)*kernel.Log(power)
+	return log - w.logZ + logConst, inv
+}
+
+// gainBy is the Kalman update with gain columns C rowᵀ, residual r and the
+// inverse innovation covariance.
+func (g *gaussian) gainBy(k, m int, gain *[2][MaxK]float64, r [2]float64, inv sym2) {
+	if m == 1 {
+		for x := range k {
+			kx := float64(gain[0][x] * inv.a)
+			g.mean[x] += float64(kx * r[0])
+			for y := 0; y <= x; y++ {
+				g.cov[Packed(x, y)] -= float64(kx * gain[0][y])
+			}
+		}
+		return
+	}
+	for x := range k {
+		k0 := float64(gain[0][x]*inv.a) + float64(gain[1][x]*inv.b)
+		k1 := float64(gain[0][x]*inv.b) + float64(gain[1][x]*inv.c)
+		g.mean[x] += float64(k0*r[0]) + float64(k1*r[1])
+		for y := 0; y <= x; y++ {
+			g.cov[Packed(x, y)] -= float64(k0*gain[0][y]) + float64(k1*gain[1][y])
+		}
+	}
+}
