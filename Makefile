@@ -1,12 +1,51 @@
 # Everything a developer or CI runs, by name. `make test` needs only Go; the
-# other targets fetch their tools as Go modules, pinned in tools/*.mod so that
+# other targets bring their tools as Go modules, pinned in tools/*.mod so that
 # none of them enters the product's go.mod.
 
 GO       ?= go
 BUF       = $(GO) tool -modfile=tools/buf.mod buf
+GOFUMPT   = $(GO) tool -modfile=tools/gofumpt.mod gofumpt
+LINTER    = $(GO) tool -modfile=tools/lint.mod golangci-lint
 PROTOS    = $(wildcard proto/leadline/v1/*.proto)
+VERSION  ?= $(shell git describe --tags --always --dirty 2>/dev/null || echo unknown)
+FUZZ_TIME ?= 60s
 
-.PHONY: generate generate-check
+# The packages that start goroutines; a test in engine/ compares the list with
+# the code. A tree may be named before it exists.
+RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/journal/... \
+	./engine/study/... ./cmd/leadline
+
+.PHONY: build test race fuzz bench fetch generate generate-check format \
+	format-check vet lint lint-only vuln licences licences-check clean
+
+# build makes one static binary.
+build:
+	CGO_ENABLED=0 $(GO) build -trimpath -ldflags '-s -w -X main.version=$(VERSION)' -o bin/leadline ./cmd/leadline
+
+# test runs every test and prints the slowest ten and what was skipped. It is
+# the same as `go run ./tools/testreport`. LEADLINE_NO_SKIP=1 makes a skip a
+# failure.
+test:
+	$(GO) run ./tools/testreport
+
+# race runs the concurrent packages under the race detector, which needs a C
+# compiler.
+race:
+	@packages="$$($(GO) list $(RACE_PACKAGES) 2>/dev/null)"; \
+	if [ -z "$$packages" ]; then echo "race: no concurrent packages yet"; \
+	else CGO_ENABLED=1 $(GO) test -race $$packages; fi
+
+# fuzz fuzzes every target live; they share FUZZ_TIME.
+fuzz:
+	$(GO) run ./tools/fuzz -total $(FUZZ_TIME)
+
+# bench runs every benchmark once over, without tests.
+bench:
+	$(GO) test -run '^$$' -bench . -benchmem ./...
+
+# fetch brings outside data for the tests; see DATA.md.
+fetch:
+	$(GO) run ./fixtures/outside/fetch
 
 # generate writes the Go code of the API beside its .proto files.
 generate:
@@ -23,3 +62,40 @@ else
 	$(BUF) generate proto --template proto/buf.gen.yaml -o build/generated
 	diff -r -x '*.proto' -x 'buf*.yaml' -x 'doc.go' -x '*_test.go' proto build/generated/proto
 endif
+
+# format rewrites; format-check names what is not formatted and fails.
+format:
+	$(GOFUMPT) -w $(SOURCES)
+
+format-check:
+	@unformatted="$$($(GOFUMPT) -l $(SOURCES))" || exit 1; \
+	if [ -n "$$unformatted" ]; then echo "not formatted, run make format:"; echo "$$unformatted"; exit 1; fi
+
+SOURCES = $(wildcard cmd engine fixtures network proto terrain tools)
+
+# vet looks at the code for arm64, too, where plain Go stands in for the vector
+# code.
+vet:
+	$(GO) vet ./...
+	GOARCH=arm64 $(GO) vet ./engine/kernel/... ./engine/filter/...
+
+lint: format-check vet lint-only
+
+lint-only:
+	$(LINTER) run ./...
+
+# vuln fails on a known vulnerability of a third-party module that is called.
+vuln:
+	$(GO) run ./tools/vulncheck
+
+# licences writes THIRD_PARTY.md from go.mod; licences-check compares them.
+licences:
+	$(GO) run ./tools/licences
+
+licences-check:
+	$(GO) run ./tools/licences -check
+
+# clean removes what was built, fetched data and the vulnerability database
+# included.
+clean:
+	rm -rf bin build

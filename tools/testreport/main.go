@@ -1,6 +1,7 @@
-// Command testreport runs `go test` with the arguments it is given and adds
-// what a reader asks next: which tests were skipped and why, and which were
-// slowest. It closes with go test's own line for each package.
+// Command testreport runs `go test` with the arguments it is given, or without
+// any runs every test of the module afresh, and adds what a reader asks next:
+// which tests were skipped and why, and which were slowest. It closes with go
+// test's own line for each package.
 //
 // With LEADLINE_NO_SKIP=1 a skipped test counts as a failure, except where it
 // lacks an outside file that the last `make fetch` found to have vanished from
@@ -17,6 +18,9 @@ import (
 	"strings"
 )
 
+// everything are the arguments when none are given.
+var everything = []string{"-count=1", "-timeout=15m", "./..."}
+
 func main() {
 	status, err := run(os.Args[1:])
 	if err != nil {
@@ -27,6 +31,9 @@ func main() {
 }
 
 func run(args []string) (int, error) {
+	if len(args) == 0 {
+		args = everything
+	}
 	vanished, err := readVanished()
 	if err != nil {
 		return 0, err
