@@ -9,7 +9,7 @@ import (
 
 // MaxK is the largest number of quantities: small dense algebra on the stack
 // is sized by it.
-const MaxK = 10
+const MaxK = 8
 
 const maxPacked = MaxK * (MaxK + 1) / 2
 

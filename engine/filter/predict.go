@@ -99,8 +99,8 @@ func Predict(b *Belief, space Space, step Step, w *Workspace) {
 			copy(mv.stepF, step.F)
 		}
 	}
+	var g gaussian
 	for i := range b.Key {
-		var g gaussian
 		b.load(&g, i, k)
 		f, add := step.F, step.Add
 		if step.Local != nil {
@@ -198,7 +198,8 @@ func (mv *mover) line(chart, cell int32, g *gaussian) {
 // placeDepth bounds how many short edges one step may cross.
 const placeDepth = 64
 
-// place puts a Gaussian at a position along a chart, or beyond its ends.
+// place puts a Gaussian with the given mass at a position along a chart, or
+// beyond its ends. It uses g's own mass and position as scratch.
 func (mv *mover) place(chart int32, pos float64, g *gaussian, mass float64, depth int) {
 	ln := mv.lines
 	length := ln.LengthM[chart]
@@ -208,10 +209,9 @@ func (mv *mover) place(chart int32, pos float64, g *gaussian, mass float64, dept
 			return
 		}
 		cell := int32(math.Min(math.Max(pos/ln.WidthM[chart], 0), float64(ln.Cells[chart]-1)))
-		r := *g
-		r.mass = mass
-		r.mean[0] = pos - float64((float64(cell)+0.5)*ln.WidthM[chart])
-		mv.out.push(LineKey(chart, cell), mv.k, &r)
+		g.mass = mass
+		g.mean[0] = pos - float64((float64(cell)+0.5)*ln.WidthM[chart])
+		mv.out.push(LineKey(chart, cell), mv.k, g)
 		return
 	}
 	links, beyond := &ln.Forward, pos-length

@@ -43,8 +43,8 @@ func Update(b *Belief, space Space, l any, w *Workspace) (logEvidence float64, e
 		// The posterior Gaussians go to the side, so that a contradiction
 		// leaves the belief alone.
 		w.out.reset()
+		var g gaussian
 		for i := range n {
-			var g gaussian
 			b.load(&g, i, k)
 			w.logs[i] = nw.condition(&g, k, angular, &w.terms, i)
 			w.out.push(b.Key[i], k, &g)
