@@ -102,9 +102,13 @@ func breaksTable(pkg, imported string) string {
 
 func TestImportTable(t *testing.T) {
 	files, _ := load(t)
+	unlisted := map[string]bool{}
 	for _, f := range files {
 		if _, _, ok := row(f.pkg); !ok {
-			t.Errorf("package %s has no row in mayImport (engine/houserules_test.go): decide what it may import", f.pkg)
+			if !unlisted[f.pkg] {
+				t.Errorf("package %s has no row in mayImport (engine/houserules_test.go): decide what it may import", f.pkg)
+			}
+			unlisted[f.pkg] = true
 			continue
 		}
 		for _, path := range imports(f) {
