@@ -1,0 +1,18 @@
+package sensor
+
+// Clearance is height above ground together with the vehicle's own altitude:
+// the ground's height is their difference, and SigmaM the standard deviation
+// of that difference.
+type Clearance struct{ ClearanceM, AltitudeM, SigmaM float64 }
+
+// Kind is "clearance".
+func (Clearance) Kind() string { return KindClearance }
+
+// Check reports a clearance that no filter could use.
+func (m Clearance) Check(Time) error {
+	p := problems{what: KindClearance}
+	p.length("clearance_m", m.ClearanceM)
+	p.length("altitude_m", m.AltitudeM)
+	p.sigmaM("sigma_m", m.SigmaM)
+	return p.err()
+}

@@ -1,0 +1,276 @@
+package sensor
+
+import (
+	"fmt"
+	"math"
+
+	"leadline/engine/filter"
+	"leadline/engine/geo"
+	"leadline/engine/kernel"
+)
+
+func sincos(a float64) (s, c float64) { return kernel.Sincos(a) }
+
+// Pose is where a belief is, for turning true directions into the frame's and
+// for what a step can only know on average.
+type Pose struct {
+	At geo.Point // the mean position
+	// HeadingRad is the mean heading in the frame, and its variance; a
+	// variance of NaN or +Inf says that there is none.
+	HeadingRad, HeadingVar float64
+}
+
+// NoHeading is the HeadingVar of a pose without a heading.
+var NoHeading = math.Inf(1)
+
+// Step turns the segment's motion into a step for a belief over the
+// quantities qs on roads (dim 1) or on a plane (dim 2, qs may be empty).
+//
+// On roads: along += d·(1 + scale) + v; a ground displacement that covers more
+// than the distance does moves each Gaussian by its component along the road,
+// with the larger variance of its ellipse. heading += turn + v.
+//
+// On a plane: a ground displacement D moves east and north by k·R·D with R the
+// rotation into the frame and k its scale at the mean. A motion in the
+// vehicle's axes moves each Gaussian by k·R(heading + turn/2)·(forward·(1 +
+// scale), right), and needs a heading among the quantities.
+//
+// Every quantity gains its drift. Time that nobody covers gains the gap's
+// spread (type Vehicle, gapPrior); a turn that nobody measures, turnVar.
+func (m *Motion) Step(qs []filter.Quantity, dim int, frame geo.Frame, pose Pose) (filter.Step, error) {
+	mustDim(dim)
+	k := max(len(qs), dim)
+	s := filter.NewStep(k)
+	heading := filter.Index(qs, filter.Heading)
+	scale := filter.Index(qs, filter.OdometerScale)
+	b := m.body()
+	g := m.ground(b.turn)
+	for i := dim; i < len(qs); i++ {
+		s.Q[filter.Packed(i, i)] += qs[i].DriftVar * m.Seconds()
+	}
+	if heading >= 0 {
+		gap := float64(m.To-m.From-b.turnCovered) / 1e9
+		s.Add[heading] = b.turn
+		s.Q[filter.Packed(heading, heading)] += b.turnVar + m.Suite.Vehicle.turnVar(gap)
+	}
+	var covered Time
+	var err error
+	var plus [2]float64 // the mean motion in a gap
+	if dim == 1 {
+		covered = m.roadStep(&s, b, g, frame, pose, scale)
+	} else {
+		covered, err = m.planeStep(&s, b, g, frame, pose, heading, scale, len(qs))
+	}
+	if err != nil {
+		return s, err
+	}
+	if gapS := float64(m.To-m.From-covered) / 1e9; gapS > 0 {
+		mean, v := m.Suite.Vehicle.gap(dim).step(m.GapAgeS, gapS, m.HasVelocity)
+		for i := range dim {
+			if m.HasVelocity {
+				plus[i] = mean * m.VelocityMPS[i]
+				s.Add[i] += plus[i]
+			}
+			s.Q[filter.Packed(i, i)] += v
+		}
+	}
+	switch l := s.Local.(type) { // it replaces Add for positions
+	case *alongRoad:
+		l.plus = plus[0]
+	case *bodyMotion:
+		l.plus = plus
+	}
+	return s, nil
+}
+
+func (m *Motion) roadStep(s *filter.Step, b body, g ground, frame geo.Frame, pose Pose, scale int) Time {
+	if g.covered > b.covered {
+		d, cov := inFrame(g, frame, pose.At, false)
+		s.Local = &alongRoad{d: d}
+		s.Q[0] += largerVariance(cov)
+		return g.covered
+	}
+	s.Add[0] = b.forward
+	s.Q[0] += b.forwardVar
+	if scale >= 0 && b.scaled != 0 {
+		s.SetF(0, scale, b.scaled)
+	}
+	return b.covered
+}
+
+// inFrame turns a true displacement into the frame at a point; scaled says
+// whether lengths take the frame's scale (on roads they stay true).
+func inFrame(g ground, frame geo.Frame, at geo.Point, scaled bool) (geo.Point, [3]float64) {
+	c, s, k := frame.Rotation(at)
+	if !scaled {
+		k = 1
+	}
+	d := geo.Point{E: k * (float64(c*g.east) - float64(s*g.north)), N: k * (float64(s*g.east) + float64(c*g.north))}
+	ee, en, nn := g.cov[0], g.cov[1], g.cov[2]
+	k2 := k * k
+	return d, [3]float64{
+		k2 * (float64(c*c*ee) - float64(2*c*s*en) + float64(s*s*nn)),
+		k2 * (float64(c*s*(ee-nn)) + float64((c*c-s*s)*en)),
+		k2 * (float64(s*s*ee) + float64(2*c*s*en) + float64(c*c*nn)),
+	}
+}
+
+// largerVariance is the larger eigenvalue of a covariance.
+func largerVariance(c [3]float64) float64 {
+	return 0.5*(c[0]+c[2]) + hypot(0.5*(c[0]-c[2]), c[1])
+}
+
+func (m *Motion) planeStep(s *filter.Step, b body, g ground, frame geo.Frame, pose Pose, heading, scale, k int) (Time, error) {
+	if g.covered >= b.covered && g.covered > 0 {
+		d, cov := inFrame(g, frame, pose.At, true)
+		s.Add[0], s.Add[1] = d.E, d.N
+		for i, v := range cov {
+			s.Q[i] += v
+		}
+		return g.covered, nil
+	}
+	if b.covered == 0 {
+		return 0, nil
+	}
+	if heading < 0 {
+		return 0, fmt.Errorf("sensor: motion in the vehicle's own axes needs a heading on a plane: declare the sensor in the suite, so that heading_rad is estimated, or send displacement or speed with course")
+	}
+	_, _, ks := frame.Rotation(pose.At)
+	local := &bodyMotion{k: k, heading: heading, scale: scale, b: b, frameScale: ks}
+	s.Local = local
+	local.spread(s.Q, pose)
+	return b.covered, nil
+}
+
+// bodyMotion moves each Gaussian by the vehicle's own motion along its own
+// heading.
+type bodyMotion struct {
+	k, heading, scale int
+	b                 body
+	frameScale        float64
+	plus              [2]float64
+}
+
+var _ filter.Local = (*bodyMotion)(nil)
+
+// Wants asks for nothing: the motion depends on the heading alone.
+func (l *bodyMotion) Wants() filter.Wants { return 0 }
+
+// Local implements filter.Local: with ψ = heading + turn/2, forward axis
+// (sin ψ, cos ψ), right axis (cos ψ, -sin ψ),
+//
+//	Δ = k·[(f + s·f_scaled)·forward + r·right],
+//	∂Δ/∂heading = k·[(f + s·f_scaled)·right - r·forward],  ∂Δ/∂s = k·f_scaled·forward.
+func (l *bodyMotion) Local(add, f []float64, at *filter.Columns, mean []float64) {
+	for i := 0; i*l.k < len(mean); i++ {
+		x := mean[i*l.k : i*l.k+l.k]
+		row := f[i*2*l.k : (i+1)*2*l.k]
+		clear(row)
+		row[0], row[l.k+1] = 1, 1
+		s, c := kernel.Sincos(x[l.heading] + 0.5*l.b.turn)
+		fwd, right := l.b.forward, l.b.right
+		if l.scale >= 0 {
+			fwd += float64(x[l.scale] * l.b.scaled)
+			row[l.scale] = l.frameScale * float64(l.b.scaled*s)
+			row[l.k+l.scale] = l.frameScale * float64(l.b.scaled*c)
+		}
+		add[2*i] = l.frameScale * (float64(fwd*s) + float64(right*c))
+		add[2*i+1] = l.frameScale * (float64(fwd*c) - float64(right*s))
+		row[l.heading] = add[2*i+1]
+		row[l.k+l.heading] = -add[2*i]
+		add[2*i] += l.plus[0]
+		add[2*i+1] += l.plus[1]
+		affine(add[2*i:2*i+2], row, x)
+	}
+}
+
+// spread adds the noise of the body motion. A step has one Q for all
+// Gaussians, so the noise, which turns with the heading, is averaged over the
+// pose's heading N(ψ, v):
+//
+//	E[R D Rᵀ] = mean(D)·I + e^{-2v}·(R D Rᵀ - mean(D)·I),
+//
+// and the effect of the turn's noise on the position (through turn/2) is
+// likewise averaged, its cross term with the heading by e^{-v/2}.
+func (l *bodyMotion) spread(q []float64, pose Pose) {
+	v := pose.HeadingVar
+	known := v >= 0 && !math.IsInf(v, 0)
+	e2, e1, psi := 0.0, 0.0, 0.0
+	if known {
+		e2, e1, psi = kernel.Exp(-2*v), kernel.Exp(-0.5*v), pose.HeadingRad+0.5*l.b.turn
+	}
+	s, c := kernel.Sincos(psi)
+	k2 := l.frameScale * l.frameScale
+	// In body axes: noise of forward and right, and the half turn's effect
+	// (-right, forward)·σ_turn/2, which is an outer product.
+	half := 0.25 * l.b.turnVar
+	ff := l.b.forwardVar + half*square(l.b.right)
+	rr := l.b.rightVar + half*square(l.b.forward)
+	fr := -half * l.b.forward * l.b.right
+	mean, diff := 0.5*(ff+rr), 0.5*(ff-rr)
+	// Frame: forward = (s, c), right = (c, -s).
+	ee := float64((s*s-c*c)*diff) + float64(2*s*c*fr)
+	en := float64(2*s*c*diff) + float64((c*c-s*s)*fr)
+	q[filter.Packed(0, 0)] += k2 * (mean + e2*ee)
+	q[filter.Packed(1, 0)] += k2 * e2 * en
+	q[filter.Packed(1, 1)] += k2 * (mean - e2*ee)
+	cross := 0.5 * l.b.turnVar * l.frameScale * e1
+	q[filter.Packed(l.heading, 0)] += cross * (float64(l.b.forward*c) - float64(l.b.right*s))
+	q[filter.Packed(l.heading, 1)] += cross * (-float64(l.b.forward*s) - float64(l.b.right*c))
+}
+
+// alongRoad moves each Gaussian by a displacement's component along its road.
+type alongRoad struct {
+	d    geo.Point
+	plus float64
+}
+
+var _ filter.Local = (*alongRoad)(nil)
+
+// Wants asks for the road's direction and bend.
+func (l *alongRoad) Wants() filter.Wants { return filter.WantPosition | filter.WantHeading }
+
+// Local implements filter.Local. The road bends by κ·s over the way s, whose
+// chord points along the direction at its middle, t(s/2), s = D·t(0) to first
+// order: the shift is D·t(s/2), its derivative along the road κ·D·n with n
+// the road's right-hand normal there.
+func (l *alongRoad) Local(add, f []float64, at *filter.Columns, mean []float64) {
+	n := at.Len()
+	if n == 0 {
+		return
+	}
+	k := len(mean) / n
+	for i := range n {
+		tE, tN := midTangent(at, i, 0.5*(float64(l.d.E*at.TangentE[i])+float64(l.d.N*at.TangentN[i])))
+		add[i] = float64(l.d.E*tE) + float64(l.d.N*tN)
+		row := f[i*k : i*k+k]
+		clear(row)
+		row[0] = 1 + at.Curvature[i]*(float64(l.d.E*tN)-float64(l.d.N*tE))
+		add[i] += l.plus
+		affine(add[i:i+1], row, mean[i*k:i*k+k])
+	}
+}
+
+// affine turns shifts into the constant terms of an affine map: filter.Predict
+// moves a mean x to F x + add, and the shift of a motion that is not linear is
+// its value at the mean, x' = x + shift. So add = shift - (F - I) x. f holds
+// the rows of the positions only.
+func affine(add, f, x []float64) {
+	k := len(x)
+	for d := range add {
+		for j, v := range f[d*k : d*k+k] {
+			if j == d {
+				v--
+			}
+			add[d] -= float64(v * x[j])
+		}
+	}
+}
+
+// midTangent is the road's direction way metres on from position i, turned by
+// its curvature.
+func midTangent(at *filter.Columns, i int, way float64) (tE, tN float64) {
+	s, c := kernel.Sincos(at.Curvature[i] * way) // clockwise
+	tE, tN = at.TangentE[i], at.TangentN[i]
+	return float64(tE*c) + float64(tN*s), float64(tN*c) - float64(tE*s)
+}

@@ -1,0 +1,240 @@
+package sensor
+
+import (
+	"leadline/engine/geo"
+)
+
+// Suite describes a vehicle's sensors. It is what a suite file says, in the
+// file's units (degrees where a name says so); a figure that is 0 or left out
+// takes the documented default. Use For to fill the defaults in.
+type Suite struct {
+	Vehicle     Vehicle     `yaml:"vehicle"`
+	Environment Environment `yaml:"environment"`
+	Sensors     []Sensor    `yaml:"sensors"`
+	Beacons     []Place     `yaml:"beacons"`
+	Posts       []Post      `yaml:"posts"`
+}
+
+// Vehicle holds what concerns the vehicle as a whole.
+type Vehicle struct {
+	// AlertLimitM is the 95 % radius within which a vehicle is located:
+	// 25 m on roads unless said, 556 m on a plane (ICAO Annex 10, horizontal
+	// alert limit of a non-precision approach).
+	AlertLimitM float64 `yaml:"alert_limit_m"`
+	// IntegrityRisk is the probability with which the protection radius may
+	// be wrong, 1e-7 unless said (the order that civil aviation asks for an
+	// hour of flight, ICAO Annex 10).
+	IntegrityRisk float64 `yaml:"integrity_risk"`
+	// LateWindowS is how late an event may come and still be replayed, 2 s
+	// unless said.
+	LateWindowS float64 `yaml:"late_window_s"`
+	// HoldS is how long a time waits for a motion sensor that is due, 1 s
+	// unless said.
+	HoldS float64 `yaml:"hold_s"`
+	// LateralSigmaM is the standard deviation of the vehicle's distance from
+	// a road's centreline, 2.5 m unless said; it has no meaning on a plane.
+	LateralSigmaM float64 `yaml:"lateral_sigma_m"`
+	// MaxSpeedMPS, MaxAccelMPS2 and MaxTurnDPS are the motion prior: what
+	// the vehicle may do while nothing measures it. 40 m/s, 3 m/s² and 30 °/s
+	// unless said.
+	MaxSpeedMPS  float64 `yaml:"max_speed_mps"`
+	MaxAccelMPS2 float64 `yaml:"max_accel_mps2"`
+	MaxTurnDPS   float64 `yaml:"max_turn_dps"`
+	// LowestM and HighestM span the plausible heights of the ground: an
+	// unknown height has the density of a uniform distribution over them.
+	// Both 0: -500 to 9000 m on roads, -11000 to 9000 m on a plane (the
+	// lowest land and sea floor and the highest summit, rounded outwards).
+	LowestM  float64 `yaml:"lowest_m"`
+	HighestM float64 `yaml:"highest_m"`
+}
+
+// Environment holds what sensors need to know of the surroundings.
+type Environment struct {
+	// AirTemperatureC sets the speed of sound for posts, 15 °C unless said.
+	AirTemperatureC *float64 `yaml:"air_temperature_c"`
+	// SeaLevelPressureHPa turns pressures into altitudes, 1013.25 unless
+	// said. A day's weather changes it by 10 hPa and more, 8 m of altitude a
+	// hPa: give it.
+	SeaLevelPressureHPa float64 `yaml:"sea_level_pressure_hpa"`
+}
+
+// Sensor describes one sensor by its name in events.
+type Sensor struct {
+	Name string `yaml:"name"`
+	Kind string `yaml:"kind"`
+	// Course says of a speed that it comes with its course.
+	Course   bool     `yaml:"course"`
+	Mounting Mounting `yaml:"mounting"`
+	// TimeOffsetS is by how much the sensor's times are late; it is taken
+	// off them.
+	TimeOffsetS float64 `yaml:"time_offset_s"`
+	// Sign is 1 or, for a sensor that counts the other way, -1. It applies
+	// to travel, turn, body displacement and speed.
+	Sign int `yaml:"sign"`
+	// Noise is used where a measurement carries no sigma.
+	Noise SensorNoise `yaml:"noise"`
+	// OutlierProbability is the weight of the flat part; its defaults are in
+	// outlierDefault.
+	OutlierProbability *float64 `yaml:"outlier_probability"`
+	// HeavyProbability and HeavyFactor add a second Gaussian part with
+	// HeavyFactor times the standard deviation.
+	HeavyProbability float64 `yaml:"heavy_probability"`
+	HeavyFactor      float64 `yaml:"heavy_factor"`
+	// MaxRangeM is the largest range of a range sensor, the span of its
+	// outliers: 10 km unless said.
+	MaxRangeM float64 `yaml:"max_range_m"`
+	// CorrelationS is how long an error lasts; defaults in
+	// correlationDefault.
+	CorrelationS *float64 `yaml:"correlation_s"`
+	// BeamWidthDeg is the full opening angle of a beam that measures a
+	// height: the ground within its footprint is averaged.
+	BeamWidthDeg float64 `yaml:"beam_width_deg"`
+	// VerticalDatum names what the sensor's heights refer to; it is compared
+	// with the map's.
+	VerticalDatum string     `yaml:"vertical_datum"`
+	Nuisances     []Nuisance `yaml:"nuisances"`
+}
+
+// Mounting is where a sensor sits relative to the vehicle's reference point,
+// in the vehicle's axes. On roads the reference point is on the road's
+// surface, on water at the waterline.
+type Mounting struct {
+	ForwardM float64 `yaml:"forward_m"`
+	RightM   float64 `yaml:"right_m"`
+	DownM    float64 `yaml:"down_m"`
+}
+
+// SensorNoise is the standard deviation of measurements that carry none. A
+// kind uses the figures of its own units.
+type SensorNoise struct {
+	SigmaM         float64 `yaml:"sigma_m"`
+	SigmaDeg       float64 `yaml:"sigma_deg"`
+	SigmaMPS       float64 `yaml:"sigma_mps"`
+	SigmaMPerSqrtM float64 `yaml:"sigma_m_per_sqrt_m"` // a distance: times √|distance|
+	DegPerSqrtS    float64 `yaml:"sigma_deg_per_sqrt_s"`
+}
+
+// Nuisance is something estimated along the way: where it starts and how it
+// wanders. Its unit is in its name.
+type Nuisance struct {
+	Name          string  `yaml:"name"`
+	Mean          float64 `yaml:"mean"`
+	Sigma         float64 `yaml:"sigma"`
+	DriftPerSqrtS float64 `yaml:"drift_per_sqrt_s"`
+}
+
+// The nuisances that a suite may name so far.
+const (
+	NuisanceHeading       = "heading_deg"
+	NuisanceOdometerScale = "odometer_scale"
+)
+
+// Place is a known place by its id.
+type Place struct {
+	ID      string   `yaml:"id"`
+	LonDeg  *float64 `yaml:"lon"`
+	LatDeg  *float64 `yaml:"lat"`
+	HeightM float64  `yaml:"height_m"`
+}
+
+// Position returns the place; only a valid suite has one.
+func (p Place) Position() geo.LonLat { return geo.FromDegrees(*p.LonDeg, *p.LatDeg) }
+
+// Post is a place that hears vehicles. AxisDeg is the true direction of a
+// line of microphones: such an array cannot tell one side of its axis from
+// the other, and its bearings count for both. A post without an axis tells
+// all directions apart.
+type Post struct {
+	ID      string   `yaml:"id"`
+	LonDeg  *float64 `yaml:"lon"`
+	LatDeg  *float64 `yaml:"lat"`
+	HeightM float64  `yaml:"height_m"`
+	AxisDeg *float64 `yaml:"axis_deg"`
+	// SpacingM and DelaySigmaS give the sigma of bearings that carry none,
+	// by ArrivalSigmaRad; SigmaDeg does so directly.
+	SpacingM    float64 `yaml:"spacing_m"`
+	DelaySigmaS float64 `yaml:"delay_sigma_s"`
+	SigmaDeg    float64 `yaml:"sigma_deg"`
+}
+
+// Position returns the post's place; only a valid suite has one.
+func (p Post) Position() geo.LonLat { return geo.FromDegrees(*p.LonDeg, *p.LatDeg) }
+
+// Default is the suite of a vehicle that has none, on roads (dim 1) or on a
+// plane (dim 2): no sensors are declared, so every kind is taken with the
+// sigmas it carries and the defaults named on the types.
+func Default(dim int) *Suite { return (&Suite{}).For(dim) }
+
+// For returns a copy of the suite with the defaults for roads (dim 1) or a
+// plane (dim 2) filled in.
+func (s *Suite) For(dim int) *Suite {
+	mustDim(dim)
+	c := *s
+	or := func(v *float64, roads, plane float64) {
+		if *v == 0 {
+			*v = roads
+			if dim == 2 {
+				*v = plane
+			}
+		}
+	}
+	v := &c.Vehicle
+	or(&v.AlertLimitM, 25, 556)
+	or(&v.IntegrityRisk, 1e-7, 1e-7)
+	or(&v.LateWindowS, 2, 2)
+	or(&v.HoldS, 1, 1)
+	or(&v.LateralSigmaM, 2.5, 0)
+	if dim == 2 {
+		v.LateralSigmaM = 0
+	}
+	or(&v.MaxSpeedMPS, 40, 40)
+	or(&v.MaxAccelMPS2, 3, 3)
+	or(&v.MaxTurnDPS, 30, 30)
+	if v.LowestM == 0 && v.HighestM == 0 {
+		or(&v.LowestM, -500, -11000)
+		or(&v.HighestM, 9000, 9000)
+	}
+	or(&c.Environment.SeaLevelPressureHPa, isaP0HPa, isaP0HPa)
+	if c.Environment.AirTemperatureC == nil {
+		t := 15.0
+		c.Environment.AirTemperatureC = &t
+	}
+	return &c
+}
+
+func mustDim(dim int) {
+	if dim != 1 && dim != 2 {
+		panic("sensor: dim is 1 on roads and 2 on a plane")
+	}
+}
+
+// Sensor returns the description of a sensor; one that the suite does not
+// name has the defaults of its kind.
+func (s *Suite) Sensor(name, kind string) Sensor {
+	for _, d := range s.Sensors {
+		if d.Name == name {
+			return d
+		}
+	}
+	return Sensor{Name: name, Kind: kind}
+}
+
+// Beacon returns the beacon of an id.
+func (s *Suite) Beacon(id string) (Place, bool) {
+	for _, b := range s.Beacons {
+		if b.ID == id {
+			return b, true
+		}
+	}
+	return Place{}, false
+}
+
+// Post returns the post of an id.
+func (s *Suite) Post(id string) (Post, bool) {
+	for _, p := range s.Posts {
+		if p.ID == id {
+			return p, true
+		}
+	}
+	return Post{}, false
+}

@@ -1,0 +1,228 @@
+package sensor
+
+import (
+	"errors"
+	"fmt"
+	"slices"
+	"strings"
+
+	"leadline/engine/geo"
+)
+
+// finding is one thing wrong with a suite: where and what.
+type finding struct {
+	path, text string
+	line       int
+}
+
+func (f finding) String() string {
+	if f.path == "" {
+		return f.text
+	}
+	return f.path + ": " + f.text
+}
+
+// Validate lists everything wrong with a suite in one error.
+func (s *Suite) Validate() error {
+	found := s.problems()
+	if len(found) == 0 {
+		return nil
+	}
+	all := make([]string, len(found))
+	for i, f := range found {
+		all[i] = f.String()
+	}
+	return errors.New("suite: " + strings.Join(all, "; "))
+}
+
+type findings []finding
+
+func (f *findings) add(path, format string, args ...any) {
+	*f = append(*f, finding{path: path, text: fmt.Sprintf(format, args...)})
+}
+
+// within reports a figure outside [lo, hi]; NaN is.
+func (f *findings) within(path string, v, lo, hi float64) {
+	if !(v >= lo && v <= hi) {
+		f.add(path, "%v must be a number from %v to %v", v, lo, hi)
+	}
+}
+
+// unless0 is within for figures where 0 means the default.
+func (f *findings) unless0(path string, v, lo, hi float64) {
+	if v != 0 {
+		f.within(path, v, lo, hi)
+	}
+}
+
+func (f *findings) id(path, id string, seen map[string]bool) {
+	switch {
+	case id == "":
+		f.add(path, "it needs a name")
+	case len(id) > maxName:
+		f.add(path, "the name has %d bytes: at most %d are allowed", len(id), maxName)
+	case seen[id]:
+		f.add(path, "%q is there twice", id)
+	}
+	seen[id] = true
+}
+
+func (s *Suite) problems() []finding {
+	var f findings
+	v := s.Vehicle
+	f.unless0("vehicle.alert_limit_m", v.AlertLimitM, 0.01, 1e6)
+	f.unless0("vehicle.integrity_risk", v.IntegrityRisk, 1e-12, 0.1)
+	f.unless0("vehicle.late_window_s", v.LateWindowS, 1e-3, 3600)
+	f.unless0("vehicle.hold_s", v.HoldS, 1e-3, 3600)
+	f.unless0("vehicle.lateral_sigma_m", v.LateralSigmaM, 1e-3, 100)
+	f.unless0("vehicle.max_speed_mps", v.MaxSpeedMPS, 0.01, 1e4)
+	f.unless0("vehicle.max_accel_mps2", v.MaxAccelMPS2, 1e-3, 1e3)
+	f.unless0("vehicle.max_turn_dps", v.MaxTurnDPS, 1e-3, 1e4)
+	f.within("vehicle.lowest_m", v.LowestM, -20000, 20000)
+	f.within("vehicle.highest_m", v.HighestM, -20000, 20000)
+	if (v.LowestM != 0 || v.HighestM != 0) && !(v.HighestM-v.LowestM >= 1) {
+		f.add("vehicle.highest_m", "it must be at least 1 m above lowest_m")
+	}
+	if t := s.Environment.AirTemperatureC; t != nil {
+		f.within("environment.air_temperature_c", *t, -90, 60)
+	}
+	f.unless0("environment.sea_level_pressure_hpa", s.Environment.SeaLevelPressureHPa, 800, 1200)
+	if len(s.Sensors) > maxSensors {
+		f.add("sensors", "%d sensors: at most %d are allowed", len(s.Sensors), maxSensors)
+		return f
+	}
+	seen := map[string]bool{}
+	nuisances := map[string]string{}
+	for i, d := range s.Sensors {
+		path := fmt.Sprintf("sensors[%d]", i)
+		f.id(path+".name", d.Name, seen)
+		f.sensor(path, d)
+		for j, n := range d.Nuisances {
+			where := fmt.Sprintf("%s.nuisances[%d]", path, j)
+			if by, twice := nuisances[n.Name]; twice {
+				f.add(where+".name", "%s is already described at sensor %q: a vehicle has one", n.Name, by)
+			}
+			nuisances[n.Name] = d.Name
+			f.nuisance(where, n)
+		}
+	}
+	if len(s.Beacons) > maxPlaces || len(s.Posts) > maxPlaces {
+		f.add("beacons", "at most %d beacons and posts each are allowed", maxPlaces)
+		return f
+	}
+	seen = map[string]bool{}
+	for i, b := range s.Beacons {
+		path := fmt.Sprintf("beacons[%d]", i)
+		f.id(path+".id", b.ID, seen)
+		f.place(path, b.LonDeg, b.LatDeg, b.HeightM)
+	}
+	seen = map[string]bool{}
+	for i, p := range s.Posts {
+		path := fmt.Sprintf("posts[%d]", i)
+		f.id(path+".id", p.ID, seen)
+		f.place(path, p.LonDeg, p.LatDeg, p.HeightM)
+		if p.AxisDeg != nil {
+			f.within(path+".axis_deg", *p.AxisDeg, -360, 360)
+		}
+		f.unless0(path+".spacing_m", p.SpacingM, 1e-3, 1e3)
+		f.unless0(path+".delay_sigma_s", p.DelaySigmaS, 1e-9, 1)
+		f.unless0(path+".sigma_deg", p.SigmaDeg, 1e-3, 180)
+		if (p.SpacingM == 0) != (p.DelaySigmaS == 0) {
+			f.add(path, "spacing_m and delay_sigma_s go together")
+		}
+	}
+	return f
+}
+
+func (f *findings) sensor(path string, d Sensor) {
+	if !slices.Contains(Kinds(), d.Kind) {
+		f.add(path+".kind", "%q is no kind of measurement: the kinds are %s", d.Kind, strings.Join(Kinds(), ", "))
+	}
+	if d.Course && d.Kind != KindSpeed {
+		f.add(path+".course", "only a speed has a course")
+	}
+	for _, x := range []struct {
+		name string
+		v    float64
+	}{{"forward_m", d.Mounting.ForwardM}, {"right_m", d.Mounting.RightM}, {"down_m", d.Mounting.DownM}} {
+		f.within(path+".mounting."+x.name, x.v, -1000, 1000)
+	}
+	f.within(path+".time_offset_s", d.TimeOffsetS, -3600, 3600)
+	if d.Sign < -1 || d.Sign > 1 {
+		f.add(path+".sign", "%d must be 1 or -1", d.Sign)
+	}
+	n := path + ".noise."
+	f.unless0(n+"sigma_m", d.Noise.SigmaM, minSigmaM, maxSigmaM)
+	f.unless0(n+"sigma_deg", d.Noise.SigmaDeg, minSigmaDeg, maxSigmaDeg)
+	f.unless0(n+"sigma_mps", d.Noise.SigmaMPS, minSigmaMPS, maxSpeedMPS)
+	f.unless0(n+"sigma_m_per_sqrt_m", d.Noise.SigmaMPerSqrtM, minSigmaM, 1e3)
+	f.unless0(n+"sigma_deg_per_sqrt_s", d.Noise.DegPerSqrtS, minSigmaDeg, 1e3)
+	if d.OutlierProbability != nil {
+		f.within(path+".outlier_probability", *d.OutlierProbability, 0, 0.9)
+	}
+	f.within(path+".heavy_probability", d.HeavyProbability, 0, 0.5)
+	if d.HeavyProbability != 0 || d.HeavyFactor != 0 {
+		f.within(path+".heavy_factor", d.HeavyFactor, 1, 100)
+	}
+	if d.outlier()+d.HeavyProbability > 0.95 {
+		f.add(path, "outlier_probability and heavy_probability leave nothing for the sensor itself")
+	}
+	f.unless0(path+".max_range_m", d.MaxRangeM, 1, maxFarM)
+	if d.CorrelationS != nil {
+		f.within(path+".correlation_s", *d.CorrelationS, 0, 3600)
+	}
+	f.within(path+".beam_width_deg", d.BeamWidthDeg, 0, 120)
+	if len(d.VerticalDatum) > maxName {
+		f.add(path+".vertical_datum", "at most %d bytes are allowed", maxName)
+	}
+	if len(d.Nuisances) > 16 {
+		f.add(path+".nuisances", "at most 16 are allowed")
+	}
+}
+
+// laterNuisances have a name already, so that the message can say more than
+// that they are unknown.
+var laterNuisances = []string{"gyro_bias_dps", "altimeter_offset_m", "tide_m", "sound_speed_mps", "compass_offset_deg", "clock_offset_s"}
+
+func (f *findings) nuisance(path string, n Nuisance) {
+	switch {
+	case n.Name == NuisanceHeading:
+		f.within(path+".mean", n.Mean, -360, 360)
+		f.within(path+".sigma", n.Sigma, 1e-3, 104) // uniform: 180°/√3
+		f.within(path+".drift_per_sqrt_s", n.DriftPerSqrtS, 0, 90)
+	case n.Name == NuisanceOdometerScale:
+		f.within(path+".mean", n.Mean, -0.5, 0.5)
+		f.within(path+".sigma", n.Sigma, 1e-6, 0.5)
+		f.within(path+".drift_per_sqrt_s", n.DriftPerSqrtS, 0, 0.1)
+	case slices.Contains(laterNuisances, n.Name):
+		f.add(path+".name", "%s is not supported yet: remove it and widen the sensor's noise; supported are %s and %s", n.Name, NuisanceHeading, NuisanceOdometerScale)
+	default:
+		f.add(path+".name", "%q is no nuisance: supported are %s and %s", n.Name, NuisanceHeading, NuisanceOdometerScale)
+	}
+}
+
+func (f *findings) place(path string, lon, lat *float64, height float64) {
+	switch {
+	case lon == nil || lat == nil:
+		f.add(path, "it needs lon and lat in degrees")
+	default:
+		if err := geo.FromDegrees(*lon, *lat).Check(); err != nil {
+			f.add(path+".lon", "%v", err)
+		}
+	}
+	f.within(path+".height_m", height, -20000, 100000)
+}
+
+// CheckDatum compares the vertical datums of the sensors with the map's. A
+// side that states none is taken on trust; two that differ are an error.
+// Case and spaces do not count.
+func (s *Suite) CheckDatum(mapDatum string) error {
+	p := problems{what: "suite"}
+	norm := func(d string) string { return strings.ToLower(strings.Join(strings.Fields(d), "")) }
+	for _, d := range s.Sensors {
+		if d.VerticalDatum != "" && norm(mapDatum) != "" && norm(d.VerticalDatum) != norm(mapDatum) {
+			p.addf("sensor %q measures heights above %s, the map is above %s: convert one of them", d.Name, d.VerticalDatum, mapDatum)
+		}
+	}
+	return p.err()
+}
