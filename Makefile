@@ -20,7 +20,11 @@ RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/journal/... \
 
 # build makes one static binary.
 build:
+ifeq ($(wildcard cmd/leadline/*.go),)
+	@echo "build: no command yet"
+else
 	CGO_ENABLED=0 $(GO) build -trimpath -ldflags '-s -w -X main.version=$(VERSION)' -o bin/leadline ./cmd/leadline
+endif
 
 # test runs every test and prints the slowest ten and what was skipped. It is
 # the same as `go run ./tools/testreport`. LEADLINE_NO_SKIP=1 makes a skip a
@@ -52,15 +56,16 @@ generate:
 	$(BUF) lint proto
 	$(BUF) generate proto --template proto/buf.gen.yaml
 
-# generate-check generates into build/ and compares with what is committed.
+# generate-check generates into build/, in a folder that ./... passes over, and
+# compares with what is committed.
 generate-check:
 ifeq ($(PROTOS),)
 	@echo "generate-check: no .proto files"
 else
 	$(BUF) lint proto
-	rm -rf build/generated
-	$(BUF) generate proto --template proto/buf.gen.yaml -o build/generated
-	diff -r -x '*.proto' -x 'buf*.yaml' -x 'doc.go' -x '*_test.go' proto build/generated/proto
+	rm -rf build/_generated
+	$(BUF) generate proto --template proto/buf.gen.yaml -o build/_generated
+	diff -r -x '*.proto' -x 'buf*.yaml' -x 'doc.go' -x '*_test.go' proto build/_generated/proto
 endif
 
 # format rewrites; format-check names what is not formatted and fails.
