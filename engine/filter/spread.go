@@ -74,6 +74,11 @@ func discreteNormal(dst []float64, variance float64) []float64 {
 
 // directions splits a covariance (in cells²) into at most three spreads along
 // integer directions: Q = Σ λ u uᵀ with λ ≥ 0, exactly. It returns how many.
+// The directions are no longer than sqrt(2·κ) with κ the ratio of Q's
+// eigenvalues: an obtuse superbase holds the two shortest vectors of the
+// lattice in the norm of Q, neither longer than the axes' sqrt(λmax), and
+// their sum is at most sqrt 2 longer. κ must therefore be bounded, see
+// spreadable.
 //
 // Source: Selling's reduction to an obtuse superbase, as used for anisotropic
 // diffusion by Fehrenbach & Mirebeau, J. Math. Imaging Vision 49 (2014).
@@ -87,8 +92,9 @@ func directions(ee, en, nn float64) (u [3][2]int32, lambda [3]float64, n int) {
 	dot := func(a, b [2]float64) float64 {
 		return a[0]*(ee*b[0]+en*b[1]) + a[1]*(en*b[0]+nn*b[1])
 	}
-	// Each round lowers Σ vᵀQv; 60 rounds reach an anisotropy of 1e30.
-	for range 60 {
+	// A round lengthens one vector by another, like Euclid's algorithm by
+	// subtraction: there are fewer rounds than the longest component.
+	for range 2 * maxReach {
 		done := true
 		for k := range 3 {
 			i, j := (k+1)%3, (k+2)%3
@@ -111,6 +117,41 @@ func directions(ee, en, nn float64) (u [3][2]int32, lambda [3]float64, n int) {
 	return pack(u, lambda)
 }
 
+// maxAnisotropy bounds the ratio of the eigenvalues of what is spread at once,
+// and maxReach the length of the directions that this takes.
+const (
+	maxAnisotropy = 1e4
+	maxReach      = 142 // sqrt(2·maxAnisotropy)
+)
+
+// spreadable returns the smallest covariance p ≥ q that directions can spread
+// on a lattice: negative eigenvalues become 0, and off the axes the smaller
+// one is raised to 1/maxAnisotropy of the larger, since nothing shorter than
+// the whole lattice spreads along an irrational direction alone. p - q is
+// positive semi-definite.
+func spreadable(q [3]float64) (p [3]float64) {
+	if q[1] == 0 {
+		return [3]float64{math.Max(q[0], 0), 0, math.Max(q[2], 0)}
+	}
+	mid, half := 0.5*(q[0]+q[2]), 0.5*(q[0]-q[2])
+	r := math.Sqrt(float64(half*half) + float64(q[1]*q[1]))
+	large, small := mid+r, mid-r
+	if !(large > 0) {
+		return p
+	}
+	raise := large/maxAnisotropy - small
+	if !(raise > 0) {
+		return q
+	}
+	// (large·1 - q)/2r projects on the smaller eigenvalue's direction.
+	raise /= 2 * r
+	return [3]float64{
+		q[0] + float64(raise*(large-q[0])),
+		q[1] - float64(raise*q[1]),
+		q[2] + float64(raise*(large-q[2])),
+	}
+}
+
 // pack moves the positive spreads to the front.
 func pack(u [3][2]int32, lambda [3]float64) ([3][2]int32, [3]float64, int) {
 	n := 0
@@ -122,6 +163,3 @@ func pack(u [3][2]int32, lambda [3]float64) ([3][2]int32, [3]float64, int) {
 	}
 	return u, lambda, n
 }
-
-// psd reports whether a symmetric 2×2 matrix is positive semi-definite.
-func psd(a, b, c float64) bool { return a >= 0 && c >= 0 && float64(b*b) <= float64(a*c) }

@@ -59,14 +59,11 @@ func (b *Belief) predictTiles(step Step, w *Workspace) {
 	b.Lattice.Origin = b.Lattice.Origin.Add(geo.Point{E: step.Add[0], N: step.Add[1]})
 	s := &b.Tiles.Surplus
 	q := [3]float64{step.Q[0] - s[0], step.Q[1] - s[1], step.Q[2] - s[2]}
-	if !psd(q[0], q[1], q[2]) {
-		// The lattice is already wider than it should be: owe the less.
-		*s = [3]float64{-q[0], -q[1], -q[2]}
-		return
-	}
-	*s = [3]float64{}
+	// Where the lattice is already wider than it should be, owe the less.
+	p := spreadable(q)
+	*s = [3]float64{p[0] - q[0], p[1] - q[1], p[2] - q[2]}
 	h2 := b.Lattice.SpacingM * b.Lattice.SpacingM
-	u, lambda, n := directions(q[0]/h2, q[1]/h2, q[2]/h2)
+	u, lambda, n := directions(p[0]/h2, p[1]/h2, p[2]/h2)
 	for i := range n {
 		w.tiles.taps.col, w.tiles.taps.row = u[i][0], u[i][1]
 		w.tiles.taps.weight = discreteNormal(w.tiles.taps.weight, lambda[i])
@@ -78,7 +75,7 @@ func (b *Belief) predictTiles(step Step, w *Workspace) {
 func (b *Belief) spread(ts *tileSpace) {
 	src, dst := &b.Tiles, &ts.spare
 	reach := int32(len(ts.taps.weight) - 1)
-	ts.dilate(src, reach*abs32(ts.taps.col), reach*abs32(ts.taps.row), &b.Pruned)
+	ts.dilate(src)
 	dst.Mass = resize(dst.Mass, len(dst.At)*tileCells)
 	clear(dst.Mass)
 	for i, at := range dst.At {
@@ -135,9 +132,16 @@ func (ts *tileSpace) gather(out []float64, at TileAt, src *Tiles, dc, dr int32, 
 	}
 }
 
-// dilate sets ts.spare.At to the tiles that mass of src can reach within
-// (dc, dr) cells, and ts.index to the tiles of src.
-func (ts *tileSpace) dilate(src *Tiles, dc, dr int32, pruned *float64) {
+// dilate sets ts.spare.At to the tiles that mass of src can reach with
+// ts.taps, and ts.index to the tiles of src.
+func (ts *tileSpace) dilate(src *Tiles) {
+	reach := int32(len(ts.taps.weight) - 1)
+	// Along an axis the reach is all tiles between; along another direction
+	// only those that a tap falls on.
+	by, dc, dr := reach, ts.taps.col, ts.taps.row
+	if abs32(dc)+abs32(dr) == 1 {
+		by, dc, dr = 0, reach*abs32(dc), reach*abs32(dr)
+	}
 	if ts.index == nil {
 		ts.index = map[TileAt]int32{}
 	}
@@ -149,10 +153,18 @@ func (ts *tileSpace) dilate(src *Tiles, dc, dr int32, pruned *float64) {
 		if !any {
 			continue
 		}
-		for r := floorDiv(lo.Row-dr, TileSide); r <= floorDiv(hi.Row+dr, TileSide); r++ {
-			for c := floorDiv(lo.Col-dc, TileSide); c <= floorDiv(hi.Col+dc, TileSide); c++ {
-				at = append(at, TileAt{t.Col + c, t.Row + r})
+		cover := func(lo, hi TileAt) {
+			for r := floorDiv(lo.Row, TileSide); r <= floorDiv(hi.Row, TileSide); r++ {
+				for c := floorDiv(lo.Col, TileSide); c <= floorDiv(hi.Col, TileSide); c++ {
+					at = append(at, TileAt{t.Col + c, t.Row + r})
+				}
 			}
+		}
+		if by == 0 {
+			cover(TileAt{lo.Col - dc, lo.Row - dr}, TileAt{hi.Col + dc, hi.Row + dr})
+		}
+		for n := -by; n <= by && by > 0; n++ {
+			cover(TileAt{lo.Col + n*dc, lo.Row + n*dr}, TileAt{hi.Col + n*dc, hi.Row + n*dr})
 		}
 	}
 	ts.spare.At = sortedTiles(at)
