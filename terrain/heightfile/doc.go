@@ -1,0 +1,11 @@
+// Package heightfile reads height rasters from ESRI ASCII grids, SRTM .hgt
+// tiles, GeoTIFF and netCDF classic files, and writes and opens compiled
+// height maps.
+//
+// A compiled height map, RELIEF.heights.tif, is an ordinary GeoTIFF: float32,
+// uncompressed strips in row order, so that it can be used where it lies in
+// memory-mapped pages; voids are NaN. What GeoTIFF has no key for (vertical
+// datum and sigma, source, licence, fingerprint, checksums) is in the XML of
+// tag 42112, documented with GDAL's GeoTIFF driver; the licence is in the
+// Copyright tag too.
+package heightfile
