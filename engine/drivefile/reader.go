@@ -34,6 +34,7 @@ func (e *Error) Unwrap() error { return e.Err }
 type Reader struct {
 	name   string
 	r      *bufio.Reader
+	buf    []byte // a line longer than r's own buffer
 	line   int
 	header *Header
 	err    error // sticky
@@ -41,7 +42,7 @@ type Reader struct {
 
 // NewReader reads from r; errors call it name.
 func NewReader(r io.Reader, name string) *Reader {
-	return &Reader{name: name, r: bufio.NewReaderSize(r, MaxLine+2)} // 2 for \r\n
+	return &Reader{name: name, r: bufio.NewReader(r)}
 }
 
 // Read returns the next record, io.EOF after the last one, and otherwise an
@@ -64,34 +65,52 @@ func (r *Reader) Read() (*Record, error) {
 
 func (r *Reader) read() (*Record, error) {
 	for {
-		line, err := r.r.ReadSlice('\n')
+		line, err := r.next()
 		if err == io.EOF && len(line) == 0 {
 			if r.header == nil {
 				return nil, errors.New("no header: the file is empty; begin it with a line {\"time\":…,\"header\":{…}}")
 			}
 			return nil, io.EOF
 		}
-		r.line++
-		if err != nil && err != io.EOF && !errors.Is(err, bufio.ErrBufferFull) {
+		if err != nil && err != io.EOF {
 			return nil, err
-		}
-		ended := bytes.HasSuffix(line, []byte("\n"))
-		line = bytes.TrimRight(line, "\r\n")
-		if len(line) > MaxLine || errors.Is(err, bufio.ErrBufferFull) {
-			return nil, fmt.Errorf("the line is over %d bytes: a drive file has one record a line", MaxLine)
 		}
 		if len(bytes.TrimSpace(line)) == 0 {
 			continue
 		}
 		m := &leadlinev1.DriveRecord{}
-		if err := protojson.Unmarshal(line, m); err != nil {
-			err = plain(err)
-			if !ended {
-				err = fmt.Errorf("%w (the file's last line does not end: is the file cut off?)", err)
+		if bad := protojson.Unmarshal(line, m); bad != nil {
+			bad = plain(bad)
+			if err == io.EOF {
+				bad = fmt.Errorf("%w (the file's last line does not end: is the file cut off?)", bad)
 			}
-			return nil, err
+			return nil, bad
 		}
 		return r.record(m)
+	}
+}
+
+// next returns the next line without its end, valid until the next call;
+// io.EOF beside a line means that it did not end.
+func (r *Reader) next() ([]byte, error) {
+	r.buf = r.buf[:0]
+	for {
+		part, err := r.r.ReadSlice('\n')
+		if len(r.buf) == 0 && len(part) > 0 {
+			r.line++
+		}
+		if len(r.buf)+len(part) > MaxLine+len("\r\n") {
+			return nil, fmt.Errorf("the line is over %d bytes: a drive file has one record a line", MaxLine)
+		}
+		if err == bufio.ErrBufferFull {
+			r.buf = append(r.buf, part...)
+			continue
+		}
+		if len(r.buf) > 0 {
+			r.buf = append(r.buf, part...)
+			part = r.buf
+		}
+		return bytes.TrimRight(part, "\r\n"), err
 	}
 }
 
