@@ -1,0 +1,193 @@
+package session
+
+import (
+	"errors"
+	"fmt"
+	"slices"
+
+	"leadline/engine/filter"
+	"leadline/engine/geo"
+	"leadline/engine/sensor"
+	"leadline/engine/summary"
+)
+
+// Config is what a session is made of.
+type Config struct {
+	Vehicle string
+	// Space is the map; Names names its roads (nil on a plane).
+	Space filter.Space
+	Names Names
+	// Suite describes the sensors; nil is the default for the space.
+	Suite *sensor.Suite
+	Start Start
+	// MaxCells bounds the cells or Gaussians of the belief; 0 is 200 000. It
+	// decides the resolution of a wide start, and so belongs to what a
+	// posterior depends on.
+	MaxCells int
+}
+
+// Names is what a road map knows about its directed edges.
+type Names interface {
+	summary.Names
+	sensor.Named
+}
+
+// StartKind says how much is known at the start.
+type StartKind int
+
+// The kinds of start.
+const (
+	Anywhere StartKind = iota // on the map
+	AtPoint                   // around Point with SigmaM
+	InArea                    // within the polygon Area
+)
+
+// Start is what is known of the vehicle's place at the start.
+type Start struct {
+	Kind   StartKind
+	Point  geo.LonLat
+	SigmaM float64
+	Area   [][]geo.LonLat // exterior ring, then holes
+}
+
+// maxRing bounds the corners of a start's area.
+const maxRing = 10000
+
+// Check reports a start that no map could use.
+func (s Start) Check() error {
+	switch s.Kind {
+	case Anywhere:
+		return nil
+	case AtPoint:
+		if err := s.Point.Check(); err != nil {
+			return fmt.Errorf("start: %w", err)
+		}
+		if !(s.SigmaM > 0 && s.SigmaM <= 1e6) {
+			return fmt.Errorf("start: sigma_m is %v: give the standard deviation of the start in metres, above 0 and at most 1e6", s.SigmaM)
+		}
+		return nil
+	case InArea:
+		n := 0
+		for _, ring := range s.Area {
+			n += len(ring)
+			for _, p := range ring {
+				if err := p.Check(); err != nil {
+					return fmt.Errorf("start: area: %w", err)
+				}
+			}
+		}
+		if len(s.Area) == 0 || len(s.Area[0]) < 3 {
+			return errors.New("start: the area needs at least three corners")
+		}
+		if n > maxRing {
+			return fmt.Errorf("start: the area has %d corners, at most %d are allowed", n, maxRing)
+		}
+		return nil
+	}
+	return fmt.Errorf("start: unknown kind %d", s.Kind)
+}
+
+func (s Start) prior(f geo.Frame) filter.Prior {
+	switch s.Kind {
+	case AtPoint:
+		return filter.AtPoint{Point: f.Forward(s.Point), SigmaM: s.SigmaM}
+	case InArea:
+		rings := make([][]geo.Point, len(s.Area))
+		for i, ring := range s.Area {
+			for _, p := range ring {
+				rings[i] = append(rings[i], f.Forward(p))
+			}
+		}
+		return filter.Within{Rings: rings}
+	}
+	return filter.Anywhere{}
+}
+
+// defaultMaxCells bounds the cells of a belief.
+const defaultMaxCells = 200_000
+
+// Session is one vehicle's run. Use New.
+type Session struct {
+	vehicle  string
+	space    filter.Space
+	lines    filter.LineSpace // nil on a plane
+	names    Names
+	suite    *sensor.Suite
+	dim      int
+	cellsM   []float64 // widest cell of each level, on lines
+	maxCells int
+
+	state  state
+	snaps  []snapshot
+	log    log
+	work   filter.Workspace
+	motion sensor.Motion
+	cloud  filter.Cloud
+	sum    *summary.Summarizer
+	recent []*summary.Posterior // by time; the first final of them are final
+	final  int
+	// superseded are posteriors that a late event took back, latest first.
+	superseded []*summary.Posterior
+	hasher     *summary.Hasher
+	accepted   uint64
+	refused    uint64
+}
+
+// New starts a session. An error says what is wrong with the configuration.
+func New(c Config) (*Session, error) {
+	if c.Space == nil {
+		return nil, errors.New("session: no map")
+	}
+	if err := c.Start.Check(); err != nil {
+		return nil, err
+	}
+	s := &Session{vehicle: c.Vehicle, space: c.Space, names: c.Names, dim: 2, maxCells: c.MaxCells, hasher: summary.NewHasher()}
+	if s.maxCells == 0 {
+		s.maxCells = defaultMaxCells
+	}
+	if ls, ok := c.Space.(filter.LineSpace); ok {
+		s.lines, s.dim = ls, 1
+		for l := range ls.Levels() {
+			s.cellsM = append(s.cellsM, slices.Max(ls.Lines(l).WidthM))
+		}
+	}
+	s.suite = sensor.Default(s.dim)
+	if c.Suite != nil {
+		s.suite = c.Suite.For(s.dim)
+	}
+	s.motion.Suite = s.suite
+	v := s.suite.Vehicle
+	var err error
+	s.sum, err = summary.New(summary.Options{AlertLimitM: v.AlertLimitM, IntegrityRisk: v.IntegrityRisk, LateralSigmaM: v.LateralSigmaM})
+	if err != nil {
+		return nil, err
+	}
+	b, err := filter.Seed(c.Space, c.Start.prior(c.Space.Frame()), s.suite.Quantities(s.dim), s.maxCells)
+	if errors.Is(err, filter.ErrNowhere) {
+		return nil, errors.New("start: it does not touch the map: check its coordinates (longitude first) and the map's extent")
+	}
+	if err != nil {
+		return nil, err
+	}
+	s.state.belief = b
+	return s, nil
+}
+
+// Latest returns the latest posterior, or nil before the first. It must not
+// be changed.
+func (s *Session) Latest() *summary.Posterior {
+	if len(s.recent) == 0 {
+		return nil
+	}
+	return s.recent[len(s.recent)-1]
+}
+
+// Counts returns how many events were accepted and refused.
+func (s *Session) Counts() (accepted, refused uint64) { return s.accepted, s.refused }
+
+// Hash sums up the final posteriors so far, in event order: those that no
+// late event can change any more. After Flush that is all of them.
+func (s *Session) Hash() string { return s.hasher.Sum() }
+
+// ReadBelief spells out the present belief.
+func (s *Session) ReadBelief(dst *filter.Cloud) { s.state.belief.Read(dst, s.space, &s.work) }
