@@ -183,8 +183,7 @@ func plain(err error) error {
 // 10 Hz, about 2 GB.
 const MaxRecords = 10_000_000
 
-// ReadAll reads a whole drive: its header with the time from which its start
-// holds, its measurements and its truths in the order of the file.
+// ReadAll reads a whole drive: its header with its time, its measurements and its truths in the order of the file.
 func ReadAll(rd io.Reader, name string) (*Drive, error) {
 	r := NewReader(rd, name)
 	d := &Drive{}
@@ -211,7 +210,7 @@ func ReadAll(rd io.Reader, name string) (*Drive, error) {
 // Drive is a whole drive.
 type Drive struct {
 	Header Header
-	Time   sensor.Time // of the header: when the start holds
+	Time   sensor.Time // of the header: when the drive began
 	Events []sensor.Event
 	Truths []TimedTruth
 }

@@ -27,7 +27,7 @@ const (
 // names: a header first, then measurements, and where it is known the truth.
 type DriveRecord struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
-	// When it was measured, UTC; of a header: when the start holds. Required.
+	// When it was measured, UTC; of a header: when the drive began. Required.
 	Time *timestamppb.Timestamp `protobuf:"bytes,1,opt,name=time,proto3" json:"time,omitempty"`
 	// As in SensorMeasurement. Only beside a measurement.
 	Sensor string `protobuf:"bytes,2,opt,name=sensor,proto3" json:"sensor,omitempty"`

@@ -106,17 +106,24 @@ type Posterior struct {
 	// Covariance of the position about the mean, true east and north, m²; cell
 	// width included.
 	Covariance *Covariance `protobuf:"bytes,7,opt,name=covariance,proto3" json:"covariance,omitempty"`
-	// The most probable cell.
+	// The most probable place.
 	MostProbable *Place `protobuf:"bytes,8,opt,name=most_probable,json=mostProbable,proto3" json:"most_probable,omitempty"`
-	// The most probable regions, by falling mass.
+	// The heaviest modes, by falling mass.
 	Modes []*Mode `protobuf:"bytes,9,rep,name=modes,proto3" json:"modes,omitempty"`
+	// How many modes there are, those that are not listed included, and the
+	// probability that the others hold.
+	ModeCount uint32  `protobuf:"varint,27,opt,name=mode_count,json=modeCount,proto3" json:"mode_count,omitempty"`
+	ModeRest  float64 `protobuf:"fixed64,28,opt,name=mode_rest,json=modeRest,proto3" json:"mode_rest,omitempty"`
 	// The vehicle's heading, where it is known.
 	Heading *Direction `protobuf:"bytes,10,opt,name=heading,proto3" json:"heading,omitempty"`
 	// The vehicle's speed, where it is known.
 	Speed *SpeedEstimate `protobuf:"bytes,11,opt,name=speed,proto3" json:"speed,omitempty"`
-	// On roads: probability of each directed edge, by falling probability;
-	// the improbable ones may be left out.
+	// On roads: the directed edges by falling probability, up to a number.
 	Edges []*EdgeProbability `protobuf:"bytes,12,rep,name=edges,proto3" json:"edges,omitempty"`
+	// How many edges have any probability, and what those hold that are not
+	// listed.
+	EdgeCount uint32  `protobuf:"varint,29,opt,name=edge_count,json=edgeCount,proto3" json:"edge_count,omitempty"`
+	EdgeRest  float64 `protobuf:"fixed64,30,opt,name=edge_rest,json=edgeRest,proto3" json:"edge_rest,omitempty"`
 	// Radii about the mean that hold 50, 95 and 99 % of the probability.
 	Radii *Radii `protobuf:"bytes,13,opt,name=radii,proto3" json:"radii,omitempty"`
 	// The smallest regions that hold the asked fractions of the probability.
@@ -246,6 +253,20 @@ func (x *Posterior) GetModes() []*Mode {
 	return nil
 }
 
+func (x *Posterior) GetModeCount() uint32 {
+	if x != nil {
+		return x.ModeCount
+	}
+	return 0
+}
+
+func (x *Posterior) GetModeRest() float64 {
+	if x != nil {
+		return x.ModeRest
+	}
+	return 0
+}
+
 func (x *Posterior) GetHeading() *Direction {
 	if x != nil {
 		return x.Heading
@@ -265,6 +286,20 @@ func (x *Posterior) GetEdges() []*EdgeProbability {
 		return x.Edges
 	}
 	return nil
+}
+
+func (x *Posterior) GetEdgeCount() uint32 {
+	if x != nil {
+		return x.EdgeCount
+	}
+	return 0
+}
+
+func (x *Posterior) GetEdgeRest() float64 {
+	if x != nil {
+		return x.EdgeRest
+	}
+	return 0
 }
 
 func (x *Posterior) GetRadii() *Radii {
@@ -365,10 +400,11 @@ func (x *Posterior) GetAgeS() float64 {
 	return 0
 }
 
-// Place is a cell.
+// Place is the cell of the greatest density.
 type Place struct {
-	state    protoimpl.MessageState `protogen:"open.v1"`
-	Position *Position              `protobuf:"bytes,1,opt,name=position,proto3" json:"position,omitempty"`
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// Its middle.
+	Position *Position `protobuf:"bytes,1,opt,name=position,proto3" json:"position,omitempty"`
 	// Probability of the cell.
 	Probability float64 `protobuf:"fixed64,2,opt,name=probability,proto3" json:"probability,omitempty"`
 	// On roads: the directed edge. Not set on a plane.
@@ -446,8 +482,9 @@ func (x *Place) GetName() string {
 	return ""
 }
 
-// Mode is a connected region of high probability; both directions of one
-// road are one.
+// Mode is a place where the vehicle may be: a peak of the belief at the scale
+// of the alert limit, and what belongs to it. Both directions of one road are
+// one place.
 type Mode struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// Its share of the probability.
@@ -455,7 +492,9 @@ type Mode struct {
 	// Its mean position.
 	Mean *Position `protobuf:"bytes,2,opt,name=mean,proto3" json:"mean,omitempty"`
 	// Its covariance, true east and north, m².
-	Covariance    *Covariance `protobuf:"bytes,3,opt,name=covariance,proto3" json:"covariance,omitempty"`
+	Covariance *Covariance `protobuf:"bytes,3,opt,name=covariance,proto3" json:"covariance,omitempty"`
+	// On roads: the directed edges that hold most of it, by falling probability.
+	Edges         []*EdgeProbability `protobuf:"bytes,4,rep,name=edges,proto3" json:"edges,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -511,12 +550,19 @@ func (x *Mode) GetCovariance() *Covariance {
 	return nil
 }
 
+func (x *Mode) GetEdges() []*EdgeProbability {
+	if x != nil {
+		return x.Edges
+	}
+	return nil
+}
+
 // Direction is an angle with its spread.
 type Direction struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// Degrees clockwise from true north.
 	Deg float64 `protobuf:"fixed64,1,opt,name=deg,proto3" json:"deg,omitempty"`
-	// Standard deviation, degrees.
+	// Circular standard deviation sqrt(-2 ln R), degrees; 104 is no knowledge.
 	SigmaDeg      float64 `protobuf:"fixed64,2,opt,name=sigma_deg,json=sigmaDeg,proto3" json:"sigma_deg,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
@@ -628,8 +674,10 @@ type EdgeProbability struct {
 	// The edge's number in the map.
 	Edge uint32 `protobuf:"varint,1,opt,name=edge,proto3" json:"edge,omitempty"`
 	// The road's name, empty if it has none.
-	Name          string  `protobuf:"bytes,2,opt,name=name,proto3" json:"name,omitempty"`
-	Probability   float64 `protobuf:"fixed64,3,opt,name=probability,proto3" json:"probability,omitempty"`
+	Name        string  `protobuf:"bytes,2,opt,name=name,proto3" json:"name,omitempty"`
+	Probability float64 `protobuf:"fixed64,3,opt,name=probability,proto3" json:"probability,omitempty"`
+	// The same road in the other direction. Not set if there is none.
+	Twin          *uint32 `protobuf:"varint,4,opt,name=twin,proto3,oneof" json:"twin,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -681,6 +729,13 @@ func (x *EdgeProbability) GetName() string {
 func (x *EdgeProbability) GetProbability() float64 {
 	if x != nil {
 		return x.Probability
+	}
+	return 0
+}
+
+func (x *EdgeProbability) GetTwin() uint32 {
+	if x != nil && x.Twin != nil {
+		return *x.Twin
 	}
 	return 0
 }
@@ -749,15 +804,20 @@ func (x *Radii) GetRadius99M() float64 {
 	return 0
 }
 
-// Region is a set of cells with at least the asked probability, as polygons
-// along the cells' edges.
+// Region is the densest part of the plane that holds a probability, made of
+// square pixels.
 type Region struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// The fraction that was asked for.
 	Fraction float64 `protobuf:"fixed64,1,opt,name=fraction,proto3" json:"fraction,omitempty"`
-	// The probability that the region holds.
-	Probability   float64    `protobuf:"fixed64,2,opt,name=probability,proto3" json:"probability,omitempty"`
-	Polygons      []*Polygon `protobuf:"bytes,3,rep,name=polygons,proto3" json:"polygons,omitempty"`
+	// The probability that the region holds, at least fraction.
+	Probability float64 `protobuf:"fixed64,2,opt,name=probability,proto3" json:"probability,omitempty"`
+	// Its outlines: outsides counter-clockwise, holes clockwise, rings closed.
+	Polygons []*Polygon `protobuf:"bytes,3,rep,name=polygons,proto3" json:"polygons,omitempty"`
+	// Its area, m².
+	AreaM2 float64 `protobuf:"fixed64,4,opt,name=area_m2,json=areaM2,proto3" json:"area_m2,omitempty"`
+	// The side of a pixel, m.
+	PixelM        float64 `protobuf:"fixed64,5,opt,name=pixel_m,json=pixelM,proto3" json:"pixel_m,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -811,6 +871,20 @@ func (x *Region) GetPolygons() []*Polygon {
 		return x.Polygons
 	}
 	return nil
+}
+
+func (x *Region) GetAreaM2() float64 {
+	if x != nil {
+		return x.AreaM2
+	}
+	return 0
+}
+
+func (x *Region) GetPixelM() float64 {
+	if x != nil {
+		return x.PixelM
+	}
+	return 0
 }
 
 // Protection is a radius about the mean that the vehicle is beyond with no
@@ -882,7 +956,9 @@ func (x *Protection) GetUnboundedReason() string {
 // a sensor's bias.
 type Nuisance struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
-	// Its name, with its unit at the end: odometer_scale, heading_rad.
+	// Its name, with its unit at the end; a ratio has none (odometer_scale: true
+	// over measured distance, less 1). heading_rad is clockwise from the north
+	// of the map's frame; for true north see Posterior.heading.
 	Name string `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
 	// Mean, in the unit of the name.
 	Mean float64 `protobuf:"fixed64,2,opt,name=mean,proto3" json:"mean,omitempty"`
@@ -1025,7 +1101,9 @@ type Counts struct {
 	// Probability of what was too improbable to carry on and was dropped.
 	Pruned float64 `protobuf:"fixed64,3,opt,name=pruned,proto3" json:"pruned,omitempty"`
 	// Probability of having left the map.
-	LeftMap       float64 `protobuf:"fixed64,4,opt,name=left_map,json=leftMap,proto3" json:"left_map,omitempty"`
+	LeftMap float64 `protobuf:"fixed64,4,opt,name=left_map,json=leftMap,proto3" json:"left_map,omitempty"`
+	// Probability given to places that the belief had not followed.
+	Restart       float64 `protobuf:"fixed64,5,opt,name=restart,proto3" json:"restart,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -1088,11 +1166,18 @@ func (x *Counts) GetLeftMap() float64 {
 	return 0
 }
 
+func (x *Counts) GetRestart() float64 {
+	if x != nil {
+		return x.Restart
+	}
+	return 0
+}
+
 var File_leadline_v1_posterior_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\n" +
-	"\x1bleadline/v1/posterior.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/place.proto\"\xdc\b\n" +
+	"\x1bleadline/v1/posterior.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/place.proto\"\xd4\t\n" +
 	"\tPosterior\x12.\n" +
 	"\x04time\x18\x01 \x01(\v2\x1a.google.protobuf.TimestampR\x04time\x12\x18\n" +
 	"\avehicle\x18\x02 \x01(\tR\avehicle\x12\x10\n" +
@@ -1104,11 +1189,17 @@ const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"covariance\x18\a \x01(\v2\x17.leadline.v1.CovarianceR\n" +
 	"covariance\x127\n" +
 	"\rmost_probable\x18\b \x01(\v2\x12.leadline.v1.PlaceR\fmostProbable\x12'\n" +
-	"\x05modes\x18\t \x03(\v2\x11.leadline.v1.ModeR\x05modes\x120\n" +
+	"\x05modes\x18\t \x03(\v2\x11.leadline.v1.ModeR\x05modes\x12\x1d\n" +
+	"\n" +
+	"mode_count\x18\x1b \x01(\rR\tmodeCount\x12\x1b\n" +
+	"\tmode_rest\x18\x1c \x01(\x01R\bmodeRest\x120\n" +
 	"\aheading\x18\n" +
 	" \x01(\v2\x16.leadline.v1.DirectionR\aheading\x120\n" +
 	"\x05speed\x18\v \x01(\v2\x1a.leadline.v1.SpeedEstimateR\x05speed\x122\n" +
-	"\x05edges\x18\f \x03(\v2\x1c.leadline.v1.EdgeProbabilityR\x05edges\x12(\n" +
+	"\x05edges\x18\f \x03(\v2\x1c.leadline.v1.EdgeProbabilityR\x05edges\x12\x1d\n" +
+	"\n" +
+	"edge_count\x18\x1d \x01(\rR\tedgeCount\x12\x1b\n" +
+	"\tedge_rest\x18\x1e \x01(\x01R\bedgeRest\x12(\n" +
 	"\x05radii\x18\r \x01(\v2\x12.leadline.v1.RadiiR\x05radii\x12-\n" +
 	"\aregions\x18\x0e \x03(\v2\x13.leadline.v1.RegionR\aregions\x12.\n" +
 	"\x10area_probability\x18\x0f \x01(\x01H\x00R\x0fareaProbability\x88\x01\x01\x127\n" +
@@ -1132,34 +1223,39 @@ const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\x04edge\x18\x03 \x01(\rH\x00R\x04edge\x88\x01\x01\x12\x17\n" +
 	"\aalong_m\x18\x04 \x01(\x01R\x06alongM\x12\x12\n" +
 	"\x04name\x18\x05 \x01(\tR\x04nameB\a\n" +
-	"\x05_edge\"~\n" +
+	"\x05_edge\"\xb2\x01\n" +
 	"\x04Mode\x12\x12\n" +
 	"\x04mass\x18\x01 \x01(\x01R\x04mass\x12)\n" +
 	"\x04mean\x18\x02 \x01(\v2\x15.leadline.v1.PositionR\x04mean\x127\n" +
 	"\n" +
 	"covariance\x18\x03 \x01(\v2\x17.leadline.v1.CovarianceR\n" +
-	"covariance\":\n" +
+	"covariance\x122\n" +
+	"\x05edges\x18\x04 \x03(\v2\x1c.leadline.v1.EdgeProbabilityR\x05edges\":\n" +
 	"\tDirection\x12\x10\n" +
 	"\x03deg\x18\x01 \x01(\x01R\x03deg\x12\x1b\n" +
 	"\tsigma_deg\x18\x02 \x01(\x01R\bsigmaDeg\">\n" +
 	"\rSpeedEstimate\x12\x10\n" +
 	"\x03mps\x18\x01 \x01(\x01R\x03mps\x12\x1b\n" +
-	"\tsigma_mps\x18\x02 \x01(\x01R\bsigmaMps\"[\n" +
+	"\tsigma_mps\x18\x02 \x01(\x01R\bsigmaMps\"}\n" +
 	"\x0fEdgeProbability\x12\x12\n" +
 	"\x04edge\x18\x01 \x01(\rR\x04edge\x12\x12\n" +
 	"\x04name\x18\x02 \x01(\tR\x04name\x12 \n" +
-	"\vprobability\x18\x03 \x01(\x01R\vprobability\"d\n" +
+	"\vprobability\x18\x03 \x01(\x01R\vprobability\x12\x17\n" +
+	"\x04twin\x18\x04 \x01(\rH\x00R\x04twin\x88\x01\x01B\a\n" +
+	"\x05_twin\"d\n" +
 	"\x05Radii\x12\x1d\n" +
 	"\n" +
 	"radius50_m\x18\x01 \x01(\x01R\tradius50M\x12\x1d\n" +
 	"\n" +
 	"radius95_m\x18\x02 \x01(\x01R\tradius95M\x12\x1d\n" +
 	"\n" +
-	"radius99_m\x18\x03 \x01(\x01R\tradius99M\"x\n" +
+	"radius99_m\x18\x03 \x01(\x01R\tradius99M\"\xaa\x01\n" +
 	"\x06Region\x12\x1a\n" +
 	"\bfraction\x18\x01 \x01(\x01R\bfraction\x12 \n" +
 	"\vprobability\x18\x02 \x01(\x01R\vprobability\x120\n" +
-	"\bpolygons\x18\x03 \x03(\v2\x14.leadline.v1.PolygonR\bpolygons\"x\n" +
+	"\bpolygons\x18\x03 \x03(\v2\x14.leadline.v1.PolygonR\bpolygons\x12\x17\n" +
+	"\aarea_m2\x18\x04 \x01(\x01R\x06areaM2\x12\x17\n" +
+	"\apixel_m\x18\x05 \x01(\x01R\x06pixelM\"x\n" +
 	"\n" +
 	"Protection\x12\x12\n" +
 	"\x04risk\x18\x01 \x01(\x01R\x04risk\x12\x1e\n" +
@@ -1174,12 +1270,13 @@ const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\x06sensor\x18\x01 \x01(\tR\x06sensor\x12\x16\n" +
 	"\x06number\x18\x02 \x01(\x04R\x06number\x12\x12\n" +
 	"\x04kind\x18\x03 \x01(\tR\x04kind\x12!\n" +
-	"\flog_evidence\x18\x04 \x01(\x01R\vlogEvidence\"q\n" +
+	"\flog_evidence\x18\x04 \x01(\x01R\vlogEvidence\"\x8b\x01\n" +
 	"\x06Counts\x12\x1a\n" +
 	"\baccepted\x18\x01 \x01(\x04R\baccepted\x12\x18\n" +
 	"\arefused\x18\x02 \x01(\x04R\arefused\x12\x16\n" +
 	"\x06pruned\x18\x03 \x01(\x01R\x06pruned\x12\x19\n" +
-	"\bleft_map\x18\x04 \x01(\x01R\aleftMap*\x8a\x01\n" +
+	"\bleft_map\x18\x04 \x01(\x01R\aleftMap\x12\x18\n" +
+	"\arestart\x18\x05 \x01(\x01R\arestart*\x8a\x01\n" +
 	"\x06Status\x12\x16\n" +
 	"\x12STATUS_UNSPECIFIED\x10\x00\x12\x17\n" +
 	"\x13STATUS_CONTRADICTED\x10\x01\x12\x12\n" +
@@ -1241,12 +1338,13 @@ var file_leadline_v1_posterior_proto_depIdxs = []int32{
 	14, // 16: leadline.v1.Place.position:type_name -> leadline.v1.Position
 	14, // 17: leadline.v1.Mode.mean:type_name -> leadline.v1.Position
 	15, // 18: leadline.v1.Mode.covariance:type_name -> leadline.v1.Covariance
-	16, // 19: leadline.v1.Region.polygons:type_name -> leadline.v1.Polygon
-	20, // [20:20] is the sub-list for method output_type
-	20, // [20:20] is the sub-list for method input_type
-	20, // [20:20] is the sub-list for extension type_name
-	20, // [20:20] is the sub-list for extension extendee
-	0,  // [0:20] is the sub-list for field type_name
+	6,  // 19: leadline.v1.Mode.edges:type_name -> leadline.v1.EdgeProbability
+	16, // 20: leadline.v1.Region.polygons:type_name -> leadline.v1.Polygon
+	21, // [21:21] is the sub-list for method output_type
+	21, // [21:21] is the sub-list for method input_type
+	21, // [21:21] is the sub-list for extension type_name
+	21, // [21:21] is the sub-list for extension extendee
+	0,  // [0:21] is the sub-list for field type_name
 }
 
 func init() { file_leadline_v1_posterior_proto_init() }
@@ -1257,6 +1355,7 @@ func file_leadline_v1_posterior_proto_init() {
 	file_leadline_v1_place_proto_init()
 	file_leadline_v1_posterior_proto_msgTypes[0].OneofWrappers = []any{}
 	file_leadline_v1_posterior_proto_msgTypes[1].OneofWrappers = []any{}
+	file_leadline_v1_posterior_proto_msgTypes[5].OneofWrappers = []any{}
 	file_leadline_v1_posterior_proto_msgTypes[8].OneofWrappers = []any{}
 	type x struct{}
 	out := protoimpl.TypeBuilder{

@@ -84,43 +84,44 @@ type RefusalReason int32
 
 const (
 	RefusalReason_REFUSAL_REASON_UNSPECIFIED RefusalReason = 0
-	// It makes no sense: a field is missing, not finite or out of range.
-	RefusalReason_REFUSAL_REASON_INVALID RefusalReason = 1
-	// It has no meaning in this vehicle's space.
-	RefusalReason_REFUSAL_REASON_WRONG_KIND RefusalReason = 2
-	// It names a beacon, post, road or sensor that is not known.
-	RefusalReason_REFUSAL_REASON_UNKNOWN_NAME RefusalReason = 3
+	// A field is missing or has a value that no filter could use, or a beacon,
+	// post or road is not known.
+	RefusalReason_REFUSAL_REASON_UNUSABLE RefusalReason = 1
+	// The vehicle's map cannot use a measurement of this kind.
+	RefusalReason_REFUSAL_REASON_WRONG_SPACE RefusalReason = 2
 	// It is older than the suite's late window.
-	RefusalReason_REFUSAL_REASON_TOO_LATE RefusalReason = 4
-	// It is in already.
-	RefusalReason_REFUSAL_REASON_DUPLICATE RefusalReason = 5
-	// It is impossible everywhere on the map; the belief stays as it was.
+	RefusalReason_REFUSAL_REASON_TOO_LATE RefusalReason = 3
+	// It is so far ahead that a clock must be wrong.
+	RefusalReason_REFUSAL_REASON_TOO_EARLY RefusalReason = 4
+	// Another measurement has its time, sensor and number.
+	RefusalReason_REFUSAL_REASON_CONFLICTING RefusalReason = 5
+	// It is impossible everywhere the vehicle can be.
 	RefusalReason_REFUSAL_REASON_IMPOSSIBLE RefusalReason = 6
-	// A limit of the session.
-	RefusalReason_REFUSAL_REASON_LIMIT RefusalReason = 7
+	// More than a limit of the session allows.
+	RefusalReason_REFUSAL_REASON_TOO_MUCH RefusalReason = 7
 )
 
 // Enum value maps for RefusalReason.
 var (
 	RefusalReason_name = map[int32]string{
 		0: "REFUSAL_REASON_UNSPECIFIED",
-		1: "REFUSAL_REASON_INVALID",
-		2: "REFUSAL_REASON_WRONG_KIND",
-		3: "REFUSAL_REASON_UNKNOWN_NAME",
-		4: "REFUSAL_REASON_TOO_LATE",
-		5: "REFUSAL_REASON_DUPLICATE",
+		1: "REFUSAL_REASON_UNUSABLE",
+		2: "REFUSAL_REASON_WRONG_SPACE",
+		3: "REFUSAL_REASON_TOO_LATE",
+		4: "REFUSAL_REASON_TOO_EARLY",
+		5: "REFUSAL_REASON_CONFLICTING",
 		6: "REFUSAL_REASON_IMPOSSIBLE",
-		7: "REFUSAL_REASON_LIMIT",
+		7: "REFUSAL_REASON_TOO_MUCH",
 	}
 	RefusalReason_value = map[string]int32{
-		"REFUSAL_REASON_UNSPECIFIED":  0,
-		"REFUSAL_REASON_INVALID":      1,
-		"REFUSAL_REASON_WRONG_KIND":   2,
-		"REFUSAL_REASON_UNKNOWN_NAME": 3,
-		"REFUSAL_REASON_TOO_LATE":     4,
-		"REFUSAL_REASON_DUPLICATE":    5,
-		"REFUSAL_REASON_IMPOSSIBLE":   6,
-		"REFUSAL_REASON_LIMIT":        7,
+		"REFUSAL_REASON_UNSPECIFIED": 0,
+		"REFUSAL_REASON_UNUSABLE":    1,
+		"REFUSAL_REASON_WRONG_SPACE": 2,
+		"REFUSAL_REASON_TOO_LATE":    3,
+		"REFUSAL_REASON_TOO_EARLY":   4,
+		"REFUSAL_REASON_CONFLICTING": 5,
+		"REFUSAL_REASON_IMPOSSIBLE":  6,
+		"REFUSAL_REASON_TOO_MUCH":    7,
 	}
 )
 
@@ -257,14 +258,13 @@ type Open struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// Vehicle, map, suite and start. The map is required here.
 	Header *DriveHeader `protobuf:"bytes,1,opt,name=header,proto3" json:"header,omitempty"`
-	// When the start holds, UTC. Required.
-	Time *timestamppb.Timestamp `protobuf:"bytes,2,opt,name=time,proto3" json:"time,omitempty"`
-	// The client's name for this drive. A vehicle has one unfinished drive at a
-	// time; opening it again with the same header continues it.
-	Drive string `protobuf:"bytes,3,opt,name=drive,proto3" json:"drive,omitempty"`
-	// Give up the vehicle's unfinished drive, if it has another one.
-	Replace       bool  `protobuf:"varint,4,opt,name=replace,proto3" json:"replace,omitempty"`
-	Reply         Reply `protobuf:"varint,5,opt,name=reply,proto3,enum=leadline.v1.Reply" json:"reply,omitempty"`
+	// The client's name for this drive, a new one for each. Opening the same
+	// drive again with the same header continues it. Required.
+	Drive string `protobuf:"bytes,2,opt,name=drive,proto3" json:"drive,omitempty"`
+	// A vehicle has one unfinished drive at a time: give up that one, if it is
+	// another.
+	Replace       bool  `protobuf:"varint,3,opt,name=replace,proto3" json:"replace,omitempty"`
+	Reply         Reply `protobuf:"varint,4,opt,name=reply,proto3,enum=leadline.v1.Reply" json:"reply,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -302,13 +302,6 @@ func (*Open) Descriptor() ([]byte, []int) {
 func (x *Open) GetHeader() *DriveHeader {
 	if x != nil {
 		return x.Header
-	}
-	return nil
-}
-
-func (x *Open) GetTime() *timestamppb.Timestamp {
-	if x != nil {
-		return x.Time
 	}
 	return nil
 }
@@ -606,7 +599,8 @@ func (x *Opened) GetMaxBatch() uint32 {
 	return 0
 }
 
-// Receipt acknowledges batches.
+// Receipt acknowledges batches. The posteriors that a batch released come
+// before its receipt.
 type Receipt struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// The highest batch that is in, and all before it.
@@ -771,13 +765,16 @@ type Closed struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// The last posterior. Not set if there was none.
 	Posterior *Posterior `protobuf:"bytes,1,opt,name=posterior,proto3" json:"posterior,omitempty"`
-	// Number of final posteriors.
+	// Number of posteriors, one for each time.
 	Posteriors uint64 `protobuf:"varint,2,opt,name=posteriors,proto3" json:"posteriors,omitempty"`
-	// SHA-256 over the little-endian time (int64, ns since 1970), status,
-	// mean, covariance and log evidence of the final posteriors in order.
-	PosteriorSha256 []byte `protobuf:"bytes,3,opt,name=posterior_sha256,json=posteriorSha256,proto3" json:"posterior_sha256,omitempty"`
-	// Measurements accepted and refused over the whole drive.
-	Accepted      uint64 `protobuf:"varint,4,opt,name=accepted,proto3" json:"accepted,omitempty"`
+	// SHA-256 in hexadecimal over the final posteriors in order: for each, little
+	// endian, time (int64, ns since 1970), status (uint64), mean east and north,
+	// covariance east-east, east-north, north-north (float64, m and m² in the
+	// map's frame), and running log evidence (float64).
+	PosteriorSha256 string `protobuf:"bytes,3,opt,name=posterior_sha256,json=posteriorSha256,proto3" json:"posterior_sha256,omitempty"`
+	// Measurements accepted over the whole drive.
+	Accepted uint64 `protobuf:"varint,4,opt,name=accepted,proto3" json:"accepted,omitempty"`
+	// Measurements refused over the whole drive.
 	Refused       uint64 `protobuf:"varint,5,opt,name=refused,proto3" json:"refused,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
@@ -827,11 +824,11 @@ func (x *Closed) GetPosteriors() uint64 {
 	return 0
 }
 
-func (x *Closed) GetPosteriorSha256() []byte {
+func (x *Closed) GetPosteriorSha256() string {
 	if x != nil {
 		return x.PosteriorSha256
 	}
-	return nil
+	return ""
 }
 
 func (x *Closed) GetAccepted() uint64 {
@@ -927,11 +924,11 @@ func (x *WhereRequest) GetIntegrityRisk() float64 {
 type WhereResponse struct {
 	state     protoimpl.MessageState `protogen:"open.v1"`
 	Posterior *Posterior             `protobuf:"bytes,1,opt,name=posterior,proto3" json:"posterior,omitempty"`
-	// As in Closed, over the posteriors so far.
-	Posteriors      uint64 `protobuf:"varint,2,opt,name=posteriors,proto3" json:"posteriors,omitempty"`
-	PosteriorSha256 []byte `protobuf:"bytes,3,opt,name=posterior_sha256,json=posteriorSha256,proto3" json:"posterior_sha256,omitempty"`
+	// As in Closed, over the posteriors that no late measurement can change any
+	// more.
+	PosteriorSha256 string `protobuf:"bytes,2,opt,name=posterior_sha256,json=posteriorSha256,proto3" json:"posterior_sha256,omitempty"`
 	// Whether the drive has ended.
-	Ended         bool `protobuf:"varint,4,opt,name=ended,proto3" json:"ended,omitempty"`
+	Ended         bool `protobuf:"varint,3,opt,name=ended,proto3" json:"ended,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -973,18 +970,11 @@ func (x *WhereResponse) GetPosterior() *Posterior {
 	return nil
 }
 
-func (x *WhereResponse) GetPosteriors() uint64 {
-	if x != nil {
-		return x.Posteriors
-	}
-	return 0
-}
-
-func (x *WhereResponse) GetPosteriorSha256() []byte {
+func (x *WhereResponse) GetPosteriorSha256() string {
 	if x != nil {
 		return x.PosteriorSha256
 	}
-	return nil
+	return ""
 }
 
 func (x *WhereResponse) GetEnded() bool {
@@ -1003,13 +993,12 @@ const file_leadline_v1_service_proto_rawDesc = "" +
 	"\x04open\x18\x01 \x01(\v2\x11.leadline.v1.OpenH\x00R\x04open\x12*\n" +
 	"\x05batch\x18\x02 \x01(\v2\x12.leadline.v1.BatchH\x00R\x05batch\x12$\n" +
 	"\x03end\x18\x03 \x01(\v2\x10.leadline.v1.EndH\x00R\x03endB\t\n" +
-	"\amessage\"\xc2\x01\n" +
+	"\amessage\"\x92\x01\n" +
 	"\x04Open\x120\n" +
-	"\x06header\x18\x01 \x01(\v2\x18.leadline.v1.DriveHeaderR\x06header\x12.\n" +
-	"\x04time\x18\x02 \x01(\v2\x1a.google.protobuf.TimestampR\x04time\x12\x14\n" +
-	"\x05drive\x18\x03 \x01(\tR\x05drive\x12\x18\n" +
-	"\areplace\x18\x04 \x01(\bR\areplace\x12(\n" +
-	"\x05reply\x18\x05 \x01(\x0e2\x12.leadline.v1.ReplyR\x05reply\"g\n" +
+	"\x06header\x18\x01 \x01(\v2\x18.leadline.v1.DriveHeaderR\x06header\x12\x14\n" +
+	"\x05drive\x18\x02 \x01(\tR\x05drive\x12\x18\n" +
+	"\areplace\x18\x03 \x01(\bR\areplace\x12(\n" +
+	"\x05reply\x18\x04 \x01(\x0e2\x12.leadline.v1.ReplyR\x05reply\"g\n" +
 	"\x05Batch\x12\x1a\n" +
 	"\bsequence\x18\x01 \x01(\x04R\bsequence\x12B\n" +
 	"\fmeasurements\x18\x02 \x03(\v2\x1e.leadline.v1.SensorMeasurementR\fmeasurements\"\x05\n" +
@@ -1041,7 +1030,7 @@ const file_leadline_v1_service_proto_rawDesc = "" +
 	"\n" +
 	"posteriors\x18\x02 \x01(\x04R\n" +
 	"posteriors\x12)\n" +
-	"\x10posterior_sha256\x18\x03 \x01(\fR\x0fposteriorSha256\x12\x1a\n" +
+	"\x10posterior_sha256\x18\x03 \x01(\tR\x0fposteriorSha256\x12\x1a\n" +
 	"\baccepted\x18\x04 \x01(\x04R\baccepted\x12\x18\n" +
 	"\arefused\x18\x05 \x01(\x04R\arefused\"\xbc\x01\n" +
 	"\fWhereRequest\x12\x18\n" +
@@ -1049,29 +1038,26 @@ const file_leadline_v1_service_proto_rawDesc = "" +
 	"\x10region_fractions\x18\x02 \x03(\x01R\x0fregionFractions\x12(\n" +
 	"\x04area\x18\x03 \x01(\v2\x14.leadline.v1.PolygonR\x04area\x12*\n" +
 	"\x0eintegrity_risk\x18\x04 \x01(\x01H\x00R\rintegrityRisk\x88\x01\x01B\x11\n" +
-	"\x0f_integrity_risk\"\xa6\x01\n" +
+	"\x0f_integrity_risk\"\x86\x01\n" +
 	"\rWhereResponse\x124\n" +
-	"\tposterior\x18\x01 \x01(\v2\x16.leadline.v1.PosteriorR\tposterior\x12\x1e\n" +
-	"\n" +
-	"posteriors\x18\x02 \x01(\x04R\n" +
-	"posteriors\x12)\n" +
-	"\x10posterior_sha256\x18\x03 \x01(\fR\x0fposteriorSha256\x12\x14\n" +
-	"\x05ended\x18\x04 \x01(\bR\x05ended*Q\n" +
+	"\tposterior\x18\x01 \x01(\v2\x16.leadline.v1.PosteriorR\tposterior\x12)\n" +
+	"\x10posterior_sha256\x18\x02 \x01(\tR\x0fposteriorSha256\x12\x14\n" +
+	"\x05ended\x18\x03 \x01(\bR\x05ended*Q\n" +
 	"\x05Reply\x12\x15\n" +
 	"\x11REPLY_UNSPECIFIED\x10\x00\x12\x10\n" +
 	"\fREPLY_LATEST\x10\x01\x12\x0f\n" +
 	"\vREPLY_EVERY\x10\x02\x12\x0e\n" +
 	"\n" +
-	"REPLY_NONE\x10\x03*\xff\x01\n" +
+	"REPLY_NONE\x10\x03*\x83\x02\n" +
 	"\rRefusalReason\x12\x1e\n" +
-	"\x1aREFUSAL_REASON_UNSPECIFIED\x10\x00\x12\x1a\n" +
-	"\x16REFUSAL_REASON_INVALID\x10\x01\x12\x1d\n" +
-	"\x19REFUSAL_REASON_WRONG_KIND\x10\x02\x12\x1f\n" +
-	"\x1bREFUSAL_REASON_UNKNOWN_NAME\x10\x03\x12\x1b\n" +
-	"\x17REFUSAL_REASON_TOO_LATE\x10\x04\x12\x1c\n" +
-	"\x18REFUSAL_REASON_DUPLICATE\x10\x05\x12\x1d\n" +
-	"\x19REFUSAL_REASON_IMPOSSIBLE\x10\x06\x12\x18\n" +
-	"\x14REFUSAL_REASON_LIMIT\x10\a2\x92\x01\n" +
+	"\x1aREFUSAL_REASON_UNSPECIFIED\x10\x00\x12\x1b\n" +
+	"\x17REFUSAL_REASON_UNUSABLE\x10\x01\x12\x1e\n" +
+	"\x1aREFUSAL_REASON_WRONG_SPACE\x10\x02\x12\x1b\n" +
+	"\x17REFUSAL_REASON_TOO_LATE\x10\x03\x12\x1c\n" +
+	"\x18REFUSAL_REASON_TOO_EARLY\x10\x04\x12\x1e\n" +
+	"\x1aREFUSAL_REASON_CONFLICTING\x10\x05\x12\x1d\n" +
+	"\x19REFUSAL_REASON_IMPOSSIBLE\x10\x06\x12\x1b\n" +
+	"\x17REFUSAL_REASON_TOO_MUCH\x10\a2\x92\x01\n" +
 	"\x0fPositionService\x12?\n" +
 	"\x04Feed\x12\x18.leadline.v1.FeedRequest\x1a\x19.leadline.v1.FeedResponse(\x010\x01\x12>\n" +
 	"\x05Where\x12\x19.leadline.v1.WhereRequest\x1a\x1a.leadline.v1.WhereResponseB'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
@@ -1105,9 +1091,9 @@ var file_leadline_v1_service_proto_goTypes = []any{
 	(*WhereRequest)(nil),          // 11: leadline.v1.WhereRequest
 	(*WhereResponse)(nil),         // 12: leadline.v1.WhereResponse
 	(*DriveHeader)(nil),           // 13: leadline.v1.DriveHeader
-	(*timestamppb.Timestamp)(nil), // 14: google.protobuf.Timestamp
-	(*SensorMeasurement)(nil),     // 15: leadline.v1.SensorMeasurement
-	(*Posterior)(nil),             // 16: leadline.v1.Posterior
+	(*SensorMeasurement)(nil),     // 14: leadline.v1.SensorMeasurement
+	(*Posterior)(nil),             // 15: leadline.v1.Posterior
+	(*timestamppb.Timestamp)(nil), // 16: google.protobuf.Timestamp
 	(*Polygon)(nil),               // 17: leadline.v1.Polygon
 }
 var file_leadline_v1_service_proto_depIdxs = []int32{
@@ -1115,28 +1101,27 @@ var file_leadline_v1_service_proto_depIdxs = []int32{
 	4,  // 1: leadline.v1.FeedRequest.batch:type_name -> leadline.v1.Batch
 	5,  // 2: leadline.v1.FeedRequest.end:type_name -> leadline.v1.End
 	13, // 3: leadline.v1.Open.header:type_name -> leadline.v1.DriveHeader
-	14, // 4: leadline.v1.Open.time:type_name -> google.protobuf.Timestamp
-	0,  // 5: leadline.v1.Open.reply:type_name -> leadline.v1.Reply
-	15, // 6: leadline.v1.Batch.measurements:type_name -> leadline.v1.SensorMeasurement
-	7,  // 7: leadline.v1.FeedResponse.opened:type_name -> leadline.v1.Opened
-	8,  // 8: leadline.v1.FeedResponse.receipt:type_name -> leadline.v1.Receipt
-	16, // 9: leadline.v1.FeedResponse.posterior:type_name -> leadline.v1.Posterior
-	10, // 10: leadline.v1.FeedResponse.closed:type_name -> leadline.v1.Closed
-	9,  // 11: leadline.v1.Receipt.refusals:type_name -> leadline.v1.Refusal
-	14, // 12: leadline.v1.Refusal.time:type_name -> google.protobuf.Timestamp
-	1,  // 13: leadline.v1.Refusal.reason:type_name -> leadline.v1.RefusalReason
-	16, // 14: leadline.v1.Closed.posterior:type_name -> leadline.v1.Posterior
-	17, // 15: leadline.v1.WhereRequest.area:type_name -> leadline.v1.Polygon
-	16, // 16: leadline.v1.WhereResponse.posterior:type_name -> leadline.v1.Posterior
-	2,  // 17: leadline.v1.PositionService.Feed:input_type -> leadline.v1.FeedRequest
-	11, // 18: leadline.v1.PositionService.Where:input_type -> leadline.v1.WhereRequest
-	6,  // 19: leadline.v1.PositionService.Feed:output_type -> leadline.v1.FeedResponse
-	12, // 20: leadline.v1.PositionService.Where:output_type -> leadline.v1.WhereResponse
-	19, // [19:21] is the sub-list for method output_type
-	17, // [17:19] is the sub-list for method input_type
-	17, // [17:17] is the sub-list for extension type_name
-	17, // [17:17] is the sub-list for extension extendee
-	0,  // [0:17] is the sub-list for field type_name
+	0,  // 4: leadline.v1.Open.reply:type_name -> leadline.v1.Reply
+	14, // 5: leadline.v1.Batch.measurements:type_name -> leadline.v1.SensorMeasurement
+	7,  // 6: leadline.v1.FeedResponse.opened:type_name -> leadline.v1.Opened
+	8,  // 7: leadline.v1.FeedResponse.receipt:type_name -> leadline.v1.Receipt
+	15, // 8: leadline.v1.FeedResponse.posterior:type_name -> leadline.v1.Posterior
+	10, // 9: leadline.v1.FeedResponse.closed:type_name -> leadline.v1.Closed
+	9,  // 10: leadline.v1.Receipt.refusals:type_name -> leadline.v1.Refusal
+	16, // 11: leadline.v1.Refusal.time:type_name -> google.protobuf.Timestamp
+	1,  // 12: leadline.v1.Refusal.reason:type_name -> leadline.v1.RefusalReason
+	15, // 13: leadline.v1.Closed.posterior:type_name -> leadline.v1.Posterior
+	17, // 14: leadline.v1.WhereRequest.area:type_name -> leadline.v1.Polygon
+	15, // 15: leadline.v1.WhereResponse.posterior:type_name -> leadline.v1.Posterior
+	2,  // 16: leadline.v1.PositionService.Feed:input_type -> leadline.v1.FeedRequest
+	11, // 17: leadline.v1.PositionService.Where:input_type -> leadline.v1.WhereRequest
+	6,  // 18: leadline.v1.PositionService.Feed:output_type -> leadline.v1.FeedResponse
+	12, // 19: leadline.v1.PositionService.Where:output_type -> leadline.v1.WhereResponse
+	18, // [18:20] is the sub-list for method output_type
+	16, // [16:18] is the sub-list for method input_type
+	16, // [16:16] is the sub-list for extension type_name
+	16, // [16:16] is the sub-list for extension extendee
+	0,  // [0:16] is the sub-list for field type_name
 }
 
 func init() { file_leadline_v1_service_proto_init() }

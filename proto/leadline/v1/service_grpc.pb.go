@@ -32,6 +32,7 @@ const (
 // A call that fails has a google.rpc status: INVALID_ARGUMENT for a message
 // that no server would take, NOT_FOUND for an unknown map, suite or vehicle,
 // FAILED_PRECONDITION for one that does not fit what was sent before,
+// ALREADY_EXISTS for a vehicle whose other drive is not finished,
 // RESOURCE_EXHAUSTED for a limit, ABORTED where another stream took over,
 // UNAVAILABLE while the server stops. Its message says what was wrong, where,
 // and what to do.
@@ -85,6 +86,7 @@ func (c *positionServiceClient) Where(ctx context.Context, in *WhereRequest, opt
 // A call that fails has a google.rpc status: INVALID_ARGUMENT for a message
 // that no server would take, NOT_FOUND for an unknown map, suite or vehicle,
 // FAILED_PRECONDITION for one that does not fit what was sent before,
+// ALREADY_EXISTS for a vehicle whose other drive is not finished,
 // RESOURCE_EXHAUSTED for a limit, ABORTED where another stream took over,
 // UNAVAILABLE while the server stops. Its message says what was wrong, where,
 // and what to do.
