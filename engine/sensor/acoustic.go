@@ -1,6 +1,7 @@
 package sensor
 
 import (
+	"fmt"
 	"math"
 
 	"leadline/engine/geo"
@@ -47,4 +48,33 @@ func ArrivalSigmaRad(soundMPS, delayS, spacingM, broadsideRad float64) float64 {
 	const uniform = math.Pi / 1.7320508075688772
 	s := soundMPS * delayS / (spacingM * math.Abs(kernel.Cos(broadsideRad)))
 	return math.Min(s, uniform)
+}
+
+// likelihood: z = β(post → vehicle) + convergence at the post + v, in the
+// forms of type sight. A post with an axis hears z and its mirror image
+// 2·axis - z alike: p = ½p(z) + ½p(mirror), exactly. The vehicle's own noise
+// comes from where it is heard, not from its reference point: mounting
+// offsets do not apply. The time that sound takes (0.3 s for 100 m) is not
+// modelled yet: the bearing counts for its own time, so the sigma must cover
+// what a vehicle moves in that time, or the post's clock be set back by
+// time_offset_s for the usual distance.
+func (m AcousticBearing) likelihood(c *Context, d Sensor) (any, error) {
+	post, ok := c.Suite.Post(m.Post)
+	if !ok {
+		return nil, fmt.Errorf("post %q is not in the suite: add it under posts", m.Post)
+	}
+	at, err := c.point(post.Position(), "the post")
+	if err != nil {
+		return nil, err
+	}
+	s := sight{
+		target: at, fromTarget: true, zRad: m.BearingRad, skew: newSkew(c.Frame, at),
+		arm:        newArm(c, 0, 0),
+		lateralVar: square(c.Suite.Vehicle.LateralSigmaM), nearM: 4 * c.CellM,
+		noise: c.directionNoise(d, m.SigmaRad),
+	}
+	if post.AxisDeg != nil {
+		s.mirrored, s.mirrorRad = true, geo.WrapPi(2*geo.Rad(*post.AxisDeg)-m.BearingRad)
+	}
+	return s.likelihood(m.SigmaRad), nil
 }

@@ -16,3 +16,11 @@ func (m Clearance) Check(Time) error {
 	p.sigmaM("sigma_m", m.SigmaM)
 	return p.err()
 }
+
+// likelihood: altitude - clearance - down = height of the ground + v, with
+// down the sensor's mounting below the reference point that the altitude is
+// of (type heights).
+func (m Clearance) likelihood(c *Context, d Sensor) any {
+	z := m.AltitudeM - m.ClearanceM - d.Mounting.DownM
+	return c.heights(d, z, m.SigmaM, m.ClearanceM, d.Mounting.ForwardM, d.Mounting.RightM)
+}

@@ -27,6 +27,10 @@ func (s *Suite) Prepare(ev Event) (Event, error) {
 	if len(ev.Sensor) > maxName {
 		return ev, fmt.Errorf("a sensor's name has %d bytes: at most %d are allowed", len(ev.Sensor), maxName)
 	}
+	const lastTime = Time(9.2e18) // in 2261; leaves room for offsets
+	if ev.Time < 0 || ev.Time > lastTime {
+		return ev, fmt.Errorf("sensor %q: the time is not between 1970 and 2261", ev.Sensor)
+	}
 	d := s.Sensor(ev.Sensor, kind)
 	if d.Kind != kind {
 		return ev, fmt.Errorf("sensor %q sent a %s, but the suite says it is a %s: rename it or change the suite", ev.Sensor, kind, d.Kind)

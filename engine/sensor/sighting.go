@@ -1,6 +1,12 @@
 package sensor
 
-import "leadline/engine/geo"
+import (
+	"fmt"
+
+	"leadline/engine/filter"
+	"leadline/engine/geo"
+	"leadline/engine/kernel"
+)
 
 // Sighting is what somebody says: the vehicle is in an area or on a named
 // road, unless they are mistaken.
@@ -52,4 +58,73 @@ func openRing(ring []geo.LonLat) []geo.LonLat {
 		return ring[:n-1]
 	}
 	return ring
+}
+
+// likelihood: p(said | inside) = 1 - mistaken, p(said | outside) = mistaken;
+// with mistaken 0 the outside is impossible. A road that the map does not
+// know is an error; a corner of an area counts by its own place in the frame,
+// edges are straight there.
+func (m Sighting) likelihood(c *Context) (any, error) {
+	in, out := kernel.Log(1-m.Mistaken), kernel.Log(m.Mistaken)
+	if m.Road != "" {
+		var charts []int32
+		if c.Roads != nil {
+			charts = c.Roads.ChartsNamed(m.Road)
+		}
+		if len(charts) == 0 {
+			return nil, fmt.Errorf("sighting: the map has no road named %q: check the spelling, or give an area", m.Road)
+		}
+		return newOnRoad(charts, in, out)
+	}
+	l := &inArea{in: in, out: out}
+	for _, ring := range m.Area {
+		var points []geo.Point
+		for _, p := range openRing(ring) {
+			q, err := c.point(p, "a corner of the area")
+			if err != nil {
+				return nil, err
+			}
+			points = append(points, q)
+		}
+		l.rings = append(l.rings, points)
+	}
+	return l, nil
+}
+
+type inArea struct {
+	rings   [][]geo.Point
+	in, out float64
+}
+
+var _ filter.Likelihood = (*inArea)(nil)
+
+// Wants implements filter.Likelihood.
+func (l *inArea) Wants() filter.Wants { return filter.WantPosition }
+
+// LogLikelihood implements filter.Likelihood.
+func (l *inArea) LogLikelihood(dst []float64, at *filter.Columns) {
+	for i := range dst {
+		if l.inside(at.East[i], at.North[i]) {
+			dst[i] += l.in
+		} else {
+			dst[i] += l.out
+		}
+	}
+}
+
+// inside counts the edges that a ray to the east crosses (even-odd rule):
+// holes count once more and are outside. A point on an edge is on one side
+// of it by rounding.
+func (l *inArea) inside(e, n float64) bool {
+	odd := false
+	for _, ring := range l.rings {
+		a := ring[len(ring)-1]
+		for _, b := range ring {
+			if (a.N > n) != (b.N > n) && e < a.E+(n-a.N)/(b.N-a.N)*(b.E-a.E) {
+				odd = !odd
+			}
+			a = b
+		}
+	}
+	return odd
 }

@@ -1,6 +1,9 @@
 package sensor
 
-import "strings"
+import (
+	"sort"
+	"strings"
+)
 
 // Sounding is a depth: the sea floor's height is minus the sum of depth below
 // transducer and transducer depth (plus tide).
@@ -38,4 +41,63 @@ func (m Sounding) Check(Time) error {
 		}
 	}
 	return p.err()
+}
+
+// maxKeptBeams bounds the likelihoods of one sounding.
+const maxKeptBeams = 16
+
+// likelihoods: -(depth + transducer depth + down) = height of the sea floor
+// + v at the transducer and under each beam that is kept (type heights). down
+// is the mounting below the waterline and adds to the transducer depth that
+// the measurement carries: give it in one of the two places. The tide is not
+// estimated yet: sigma has to cover it.
+//
+// Beams close together see the same error of the map, so they are thinned:
+// from the transducer outwards a beam is kept if it is at least two of the
+// map's details (raster posts) from the transducer and from every beam kept
+// before, at most 16. Those share no post of the raster and are taken as
+// independent. Beams need a heading and a map to look beside the vehicle;
+// without them only the depth below the transducer counts.
+func (m Sounding) likelihoods(c *Context, d Sensor) []any {
+	down := m.TransducerDepthM + d.Mounting.DownM
+	f0, r0 := d.Mounting.ForwardM, d.Mounting.RightM
+	out := []any{c.heights(d, -(m.DepthBelowTransducerM + down), m.SigmaM, m.DepthBelowTransducerM, f0, r0)}
+	a := newArm(c, 1, 0)
+	if len(m.Beams) == 0 || c.Dim != 2 || c.Plane == nil || a.heading < 0 && !a.known {
+		return out
+	}
+	for _, b := range thin(m.Beams, 2*c.Plane.DetailM()) {
+		l := c.heights(d, -(b.DepthBelowTransducerM + down), b.SigmaM,
+			hypot(hypot(b.ForwardM, b.RightM), b.DepthBelowTransducerM), f0+b.ForwardM, r0+b.RightM)
+		out = append(out, l)
+	}
+	return out
+}
+
+// thin keeps beams at least apartM from the transducer and from each other,
+// nearest first, in the order of the sounding among equals.
+func thin(beams []Beam, apartM float64) []Beam {
+	order := make([]int, len(beams))
+	for i := range order {
+		order[i] = i
+	}
+	reach := func(i int) float64 { return hypot(beams[i].ForwardM, beams[i].RightM) }
+	sort.SliceStable(order, func(i, j int) bool { return reach(order[i]) < reach(order[j]) })
+	var kept []Beam
+next:
+	for _, i := range order {
+		b := beams[i]
+		if reach(i) < apartM {
+			continue
+		}
+		for _, o := range kept {
+			if hypot(b.ForwardM-o.ForwardM, b.RightM-o.RightM) < apartM {
+				continue next
+			}
+		}
+		if kept = append(kept, b); len(kept) == maxKeptBeams {
+			break
+		}
+	}
+	return kept
 }
