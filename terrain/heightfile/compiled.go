@@ -69,7 +69,9 @@ func header(r *terrain.Raster, crc []uint32) ([]byte, error) {
 		sums[i] = fmt.Sprintf("%08x", c)
 	}
 	doc := metaDocument{}
-	add := func(name, text string) { doc.Items = append(doc.Items, metaItem{Name: name, Text: text}) }
+	add := func(name, text string) {
+		doc.Items = append(doc.Items, metaItem{Name: name, Text: escape.Replace(text)})
+	}
 	add(itemFormat, formatName)
 	add(itemDatum, m.VerticalDatum)
 	add(itemSigma, f(m.SigmaM))
@@ -189,7 +191,7 @@ func geoDirectory(crs terrain.CRS, datum string) (keys []uint16, doubles []float
 		code(keyVertical, v)
 		code(keyVerticalUnit, unitMetre)
 	}
-	return append([]uint16{1, 1, 0, uint16(len(keys) / 4)}, keys...), doubles
+	return append([]uint16{1, 1, 1, uint16(len(keys) / 4)}, keys...), doubles // GeoTIFF 1.1
 }
 
 // ifdWriter collects the tags of a little-endian classic TIFF, in ascending

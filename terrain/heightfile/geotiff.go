@@ -199,14 +199,20 @@ func (m metaItems) role(role string) string {
 	return ""
 }
 
+// name returns an item's text. GDAL writes and reads texts escaped twice.
 func (m metaItems) name(name string) string {
 	for _, i := range m {
 		if i.Name == name {
-			return i.Text
+			return unescape.Replace(i.Text)
 		}
 	}
 	return ""
 }
+
+var (
+	escape   = strings.NewReplacer("&", "&amp;", "<", "&lt;", ">", "&gt;", `"`, "&quot;")
+	unescape = strings.NewReplacer("&amp;", "&", "&lt;", "<", "&gt;", ">", "&quot;", `"`, "&apos;", "'")
+)
 
 // meta takes over what a compiled map knows.
 func (m metaItems) meta(f *raw) {

@@ -58,6 +58,7 @@ func TestFixtures(t *testing.T) {
 		{name: "utm-center.asc", opt: Options{CRS: utm}, crs: "EPSG:32633", x: 500012.5, y: 5500437.5, dx: 25, dy: -25},
 		{name: "lonlat-lzw.tif", crs: "EPSG:4326", x: 10.0005, y: 49.99975, dx: 0.001, dy: -0.0005, tolSteps: 1e-9},
 		{name: "utm-deflate.tif", crs: "EPSG:32633", x: 500012.5, y: 5500437.5, dx: 25, dy: -25},
+		{name: "utm-deflate-be.tif", crs: "EPSG:32633", x: 500012.5, y: 5500437.5, dx: 25, dy: -25},
 		{name: "nocrs.tif", opt: Options{CRS: utm}, crs: "EPSG:32633", x: 500012.5, y: 5500437.5, dx: 25, dy: -25},
 		{name: "depths.nc", crs: "EPSG:4326", x: 10.0005, y: 49.99975, dx: 0.001, dy: -0.0005, tolSteps: 1e-9, source: "Invented ground"},
 		// 298° rounds to 1.5e-5° as float32, 1.5 % of a step.
