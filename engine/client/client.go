@@ -1,0 +1,228 @@
+// Package client feeds a vehicle's measurements to a Leadline server and asks
+// where it is.
+//
+//	conn, err := client.Dial("127.0.0.1:7700")
+//	feed, err := client.Open(ctx, conn, client.Drive{Header: header})
+//	err = feed.Send(measurement) // as often as there are some
+//	closed, err := feed.Close()
+//
+// To ask, use leadlinev1.NewPositionServiceClient(conn).Where.
+package client
+
+import (
+	"context"
+	"crypto/rand"
+	"errors"
+	"fmt"
+	"io"
+	"time"
+
+	"google.golang.org/grpc"
+	"google.golang.org/grpc/credentials/insecure"
+	"google.golang.org/grpc/keepalive"
+
+	leadlinev1 "leadline/proto/leadline/v1"
+)
+
+// maxMessage bounds a reply; a posterior with its largest regions takes less.
+const maxMessage = 16 << 20
+
+// Dial prepares a connection to host:port, in the clear. Nothing is sent
+// before the first call, so an address where nobody listens is an error there.
+func Dial(target string) (*grpc.ClientConn, error) {
+	return grpc.NewClient(target,
+		grpc.WithTransportCredentials(insecure.NewCredentials()),
+		grpc.WithDefaultCallOptions(grpc.MaxCallRecvMsgSize(maxMessage)),
+		grpc.WithKeepaliveParams(keepalive.ClientParameters{Time: 30 * time.Second, Timeout: 10 * time.Second}),
+	)
+}
+
+// Drive says what a feed carries, and how.
+type Drive struct {
+	Header *leadlinev1.DriveHeader
+	// Name is the name of the drive; "" makes one up. Open the same name again
+	// and send the same measurements from the start with the same Batch: what
+	// the server has is not sent twice.
+	Name string
+	// Replace gives up another drive that the vehicle has not finished.
+	Replace bool
+	// Batch is the number of measurements sent together, at most what the
+	// server takes; 0 is 64. Window is the number of batches that may be
+	// unacknowledged; 0 is 16.
+	Batch, Window int
+
+	// Reply says which posteriors are wanted. OnPosterior and OnRefusal, if
+	// set, are called one at a time, from another goroutine, and must not call
+	// the feed; a slow one slows the feed down.
+	Reply       leadlinev1.Reply
+	OnPosterior func(*leadlinev1.Posterior)
+	OnRefusal   func(*leadlinev1.Refusal)
+}
+
+// Feed is an open drive. One goroutine may use it.
+type Feed struct {
+	drive  Drive
+	stream grpc.BidiStreamingClient[leadlinev1.FeedRequest, leadlinev1.FeedResponse]
+	cancel context.CancelFunc
+
+	batch  []*leadlinev1.SensorMeasurement
+	sent   uint64        // sequence of the last batch made
+	have   uint64        // sequence of the last batch that the server had at the start
+	window chan struct{} // one token a batch without receipt
+
+	done   chan struct{} // closed when nothing more is received; then:
+	closed *leadlinev1.Closed
+	err    error
+}
+
+// Open opens a drive and waits until the server has taken it. The feed ends
+// with ctx; Close must be called in any case.
+func Open(ctx context.Context, conn grpc.ClientConnInterface, d Drive) (*Feed, error) {
+	if d.Name == "" {
+		d.Name = rand.Text()
+	}
+	if d.Batch == 0 {
+		d.Batch = 64
+	}
+	if d.Window == 0 {
+		d.Window = 16
+	}
+	if d.Batch < 1 || d.Window < 1 {
+		return nil, fmt.Errorf("client: batch %d and window %d must be positive", d.Batch, d.Window)
+	}
+	ctx, cancel := context.WithCancel(ctx)
+	opened, stream, err := open(ctx, conn, d)
+	if err != nil {
+		cancel()
+		return nil, err
+	}
+	d.Batch = min(d.Batch, int(opened.GetMaxBatch()))
+	f := &Feed{
+		drive: d, stream: stream, cancel: cancel, have: opened.GetSequence(),
+		window: make(chan struct{}, d.Window), done: make(chan struct{}),
+	}
+	go f.receive()
+	return f, nil
+}
+
+func open(ctx context.Context, conn grpc.ClientConnInterface, d Drive) (*leadlinev1.Opened, grpc.BidiStreamingClient[leadlinev1.FeedRequest, leadlinev1.FeedResponse], error) {
+	stream, err := leadlinev1.NewPositionServiceClient(conn).Feed(ctx)
+	if err != nil {
+		return nil, nil, err
+	}
+	req := &leadlinev1.Open{Header: d.Header, Drive: d.Name, Replace: d.Replace, Reply: d.Reply}
+	// An error of Send is told by Recv.
+	_ = stream.Send(&leadlinev1.FeedRequest{Message: &leadlinev1.FeedRequest_Open{Open: req}})
+	m, err := stream.Recv()
+	if err != nil {
+		return nil, nil, err
+	}
+	if m.GetOpened().GetMaxBatch() == 0 {
+		return nil, nil, errors.New("client: the server did not answer opened: is it of another version?")
+	}
+	return m.GetOpened(), stream, nil
+}
+
+// Send sends a measurement, with its batch once that is full, and waits while
+// Window batches have no receipt. It keeps m. An error ends the feed.
+func (f *Feed) Send(m *leadlinev1.SensorMeasurement) error {
+	f.batch = append(f.batch, m)
+	if len(f.batch) < f.drive.Batch {
+		return nil
+	}
+	return f.Flush()
+}
+
+// Flush sends the measurements that wait for their batch to fill.
+func (f *Feed) Flush() error {
+	if len(f.batch) == 0 {
+		return nil
+	}
+	f.sent++
+	b := &leadlinev1.Batch{Sequence: f.sent, Measurements: f.batch}
+	f.batch = nil
+	if f.sent <= f.have {
+		return nil
+	}
+	select {
+	case f.window <- struct{}{}:
+	case <-f.done:
+		return f.failure()
+	}
+	return f.send(&leadlinev1.FeedRequest{Message: &leadlinev1.FeedRequest_Batch{Batch: b}})
+}
+
+func (f *Feed) send(m *leadlinev1.FeedRequest) error {
+	if f.stream.Send(m) != nil {
+		<-f.done // where the reason arrives
+		return f.failure()
+	}
+	return nil
+}
+
+// failure is why the feed ended, if not by Close.
+func (f *Feed) failure() error {
+	if f.err != nil {
+		return f.err
+	}
+	return errors.New("client: the feed is closed")
+}
+
+// Close sends what waits, ends the drive and returns what the server says at
+// its end, or why the feed failed.
+func (f *Feed) Close() (*leadlinev1.Closed, error) {
+	defer f.cancel()
+	err := f.Flush()
+	if err == nil {
+		err = f.send(&leadlinev1.FeedRequest{Message: &leadlinev1.FeedRequest_End{End: &leadlinev1.End{}}})
+	}
+	if err != nil {
+		f.Abort()
+		return nil, err
+	}
+	<-f.done
+	return f.closed, f.err
+}
+
+// Abort breaks the stream off. The drive stays open at the server, and goes on
+// when it is opened again under its name.
+func (f *Feed) Abort() {
+	f.cancel()
+	<-f.done
+}
+
+// receive is a goroutine; it ends with the stream.
+func (f *Feed) receive() {
+	defer close(f.done)
+	last := f.have
+	for {
+		m, err := f.stream.Recv()
+		switch {
+		case err == io.EOF:
+			if f.closed == nil {
+				f.err = errors.New("client: the server ended the stream without a word")
+			}
+			return
+		case err != nil:
+			f.err = err
+			return
+		}
+		switch k := m.GetMessage().(type) {
+		case *leadlinev1.FeedResponse_Receipt:
+			if f.drive.OnRefusal != nil {
+				for _, r := range k.Receipt.GetRefusals() {
+					f.drive.OnRefusal(r)
+				}
+			}
+			for ; last < k.Receipt.GetSequence() && len(f.window) > 0; last++ {
+				<-f.window
+			}
+		case *leadlinev1.FeedResponse_Posterior:
+			if f.drive.OnPosterior != nil {
+				f.drive.OnPosterior(k.Posterior)
+			}
+		case *leadlinev1.FeedResponse_Closed:
+			f.closed = k.Closed
+		}
+	}
+}

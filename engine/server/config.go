@@ -1,0 +1,167 @@
+package server
+
+import (
+	"errors"
+	"fmt"
+	"log/slog"
+	"time"
+
+	"leadline/engine/filter"
+	"leadline/engine/geo"
+	"leadline/engine/sensor"
+	"leadline/engine/session"
+	"leadline/engine/summary"
+)
+
+// Config is what a server is made of.
+type Config struct {
+	// Maps are the maps that vehicles may name.
+	Maps []Map
+	// Suites are the suites that vehicles may name. No name is no suite: the
+	// session's defaults.
+	Suites map[string]*sensor.Suite
+	// NewSession makes a session; nil is session.New.
+	NewSession func(session.Config) (Session, error)
+	// MaxCells is session.Config.MaxCells.
+	MaxCells int
+	Limits   Limits
+	// Now is the clock by which answers are dated; nil is time.Now.
+	Now func() time.Time
+	// Log takes what the operator should know; nil is nothing.
+	Log *slog.Logger
+}
+
+// Map is a map under the name by which vehicles ask for it. Names is nil on a
+// plane.
+type Map struct {
+	Name  string
+	Space filter.Space
+	Names session.Names
+}
+
+// Session is what the server needs of session.Session. One goroutine calls it.
+type Session interface {
+	Add(sensor.Event) ([]*summary.Posterior, error)
+	Flush() []*summary.Posterior
+	Latest() *summary.Posterior
+	Counts() (accepted, refused uint64)
+	Hash() string
+}
+
+// Asker is a session that answers more about its latest posterior. Where uses
+// it for what its request asks beyond that.
+type Asker interface {
+	// Region is the densest part of the plane that holds a fraction.
+	Region(fraction float64) (*summary.Region, error)
+	// Inside is the probability inside a polygon.
+	Inside(polygon [][]geo.LonLat) (float64, error)
+	// Protection is the protection radius at a risk.
+	Protection(risk float64) (summary.Protection, error)
+}
+
+var _ Session = (*session.Session)(nil)
+
+// Limits bound what clients can make the server hold. A limit that is 0 has
+// its default.
+type Limits struct {
+	// Vehicles is the number of sessions, finished ones that can still be
+	// asked included; the longest idle one makes room if it is finished or
+	// older than IdleTimeout. Default 1000.
+	Vehicles int
+	// IdleTimeout is how long an unfinished drive without a stream is kept
+	// for certain. Default 1 hour.
+	IdleTimeout time.Duration
+	// Streams is the number of Feed calls at once. Default 2000.
+	Streams int
+	// Openings is the number of sessions that are made at once: a start
+	// anywhere on a large map takes memory and time. Default 2.
+	Openings int
+	// MessageBytes is the size of one message. Default 4 MiB.
+	MessageBytes int
+	// BatchMeasurements is the number of measurements in a batch. Default
+	// 1024.
+	BatchMeasurements int
+	// QueueBatches is the number of batches that wait at one session; the
+	// stream stops reading beyond. Default 4.
+	QueueBatches int
+	// Regions is the number of region fractions in one question. Default 8.
+	Regions int
+	// OpenTimeout is how long a stream may take to say what it is for.
+	// Default 10 s.
+	OpenTimeout time.Duration
+}
+
+// fields lists the limits with their defaults.
+func (l *Limits) fields() []limit {
+	return []limit{
+		{"Vehicles", &l.Vehicles, 1000},
+		{"Streams", &l.Streams, 2000},
+		{"Openings", &l.Openings, 2},
+		{"MessageBytes", &l.MessageBytes, 4 << 20},
+		{"BatchMeasurements", &l.BatchMeasurements, 1024},
+		{"QueueBatches", &l.QueueBatches, 4},
+		{"Regions", &l.Regions, 8},
+	}
+}
+
+type limit struct {
+	name string
+	v    *int
+	or   int
+}
+
+// withDefaults fills the fields that are zero.
+func (l Limits) withDefaults() Limits {
+	for _, f := range l.fields() {
+		if *f.v == 0 {
+			*f.v = f.or
+		}
+	}
+	if l.IdleTimeout == 0 {
+		l.IdleTimeout = time.Hour
+	}
+	if l.OpenTimeout == 0 {
+		l.OpenTimeout = 10 * time.Second
+	}
+	return l
+}
+
+// Validate lists everything that is wrong with the configuration.
+func (c *Config) Validate() error {
+	var errs []error
+	seen := map[string]bool{}
+	for i, m := range c.Maps {
+		switch {
+		case m.Name == "":
+			errs = append(errs, fmt.Errorf("server: map %d has no name", i+1))
+		case seen[m.Name]:
+			errs = append(errs, fmt.Errorf("server: two maps are called %q: rename one", m.Name))
+		}
+		seen[m.Name] = true
+		if m.Space == nil {
+			errs = append(errs, fmt.Errorf("server: map %q has no space", m.Name))
+		}
+	}
+	if len(c.Maps) == 0 {
+		errs = append(errs, errors.New("server: no map: give at least one"))
+	}
+	for _, f := range c.Limits.fields() {
+		if *f.v < 0 {
+			errs = append(errs, fmt.Errorf("server: limit %s is %d: it must be positive, or 0 for %d", f.name, *f.v, f.or))
+		}
+	}
+	if c.Limits.IdleTimeout < 0 || c.Limits.OpenTimeout < 0 {
+		errs = append(errs, errors.New("server: a timeout is negative"))
+	}
+	return errors.Join(errs...)
+}
+
+// find returns the map of a name.
+func (c *Config) find(name string) (Map, bool) {
+	for _, m := range c.Maps {
+		if m.Name == name {
+			return m, true
+		}
+	}
+	return Map{}, false
+}

@@ -1,0 +1,14 @@
+// Package server is the gRPC adapter around sessions: conversion, limits and
+// ownership. What a vehicle's posterior is, engine/session says; the server
+// adds a clock, and answers many vehicles at once.
+//
+// One goroutine, an owner, owns each session and is the only one to touch it.
+// A stream hands its batches to the owner through a queue of its own and takes
+// the replies from another; both are bounded, so that a fast sender waits and
+// a slow reader holds up nobody but its own vehicle. An owner outlives its
+// streams: when one breaks, the vehicle opens its drive again and goes on
+// after the last batch that was acknowledged; a stream that is opened takes
+// over from the one before, which may be half open.
+//
+// Nothing is durable yet: replies say so.
+package server

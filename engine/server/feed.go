@@ -1,0 +1,176 @@
+package server
+
+import (
+	"context"
+	"io"
+	"time"
+
+	"google.golang.org/grpc"
+	"google.golang.org/grpc/codes"
+	"google.golang.org/grpc/status"
+
+	leadlinev1 "leadline/proto/leadline/v1"
+)
+
+type feedStream = grpc.BidiStreamingServer[leadlinev1.FeedRequest, leadlinev1.FeedResponse]
+
+// received is what a stream brought.
+type received struct {
+	message *leadlinev1.FeedRequest
+	err     error
+}
+
+// Feed is the vehicle's stream: see the .proto file.
+func (s *Server) Feed(stream feedStream) error {
+	if n, most := s.streams.Add(1), int64(s.cfg.Limits.Streams); n > most {
+		s.streams.Add(-1)
+		return status.Errorf(codes.ResourceExhausted, "the server has its %d streams: try later, or raise the limit", most)
+	}
+	defer s.streams.Add(-1)
+	ctx := stream.Context()
+	requests := make(chan received)
+	go receive(ctx, stream, requests) // ends with the stream's context
+
+	open, err := s.first(ctx, requests)
+	if err != nil {
+		return err
+	}
+	o, err := s.open(ctx, open)
+	if err != nil {
+		return err
+	}
+	defer s.leave(o)
+	a := &attachment{
+		reply: open.GetReply(),
+		in:    make(chan work, s.cfg.Limits.QueueBatches),
+		out:   make(chan item),
+		gone:  make(chan struct{}), taken: make(chan struct{}),
+	}
+	defer close(a.gone)
+	select {
+	case o.attach <- a:
+	case <-o.dead:
+		return o.err
+	case <-ctx.Done():
+		return status.FromContextError(ctx.Err()).Err()
+	}
+	return s.carry(ctx, stream, requests, o, a)
+}
+
+// receive passes on what the stream brings until it brings an error.
+func receive(ctx context.Context, stream feedStream, to chan<- received) {
+	for {
+		m, err := stream.Recv()
+		select {
+		case to <- received{m, err}:
+		case <-ctx.Done():
+			return
+		}
+		if err != nil {
+			return
+		}
+	}
+}
+
+// first waits for what must come first.
+func (s *Server) first(ctx context.Context, requests <-chan received) (*leadlinev1.Open, error) {
+	late := time.NewTimer(s.cfg.Limits.OpenTimeout)
+	defer late.Stop()
+	select {
+	case r := <-requests:
+		if r.err == io.EOF {
+			return nil, status.Error(codes.InvalidArgument, "the stream ended without a message: send open first")
+		}
+		if r.err != nil {
+			return nil, s.broken(r.err)
+		}
+		if m := r.message.GetOpen(); m != nil {
+			return m, nil
+		}
+		return nil, status.Error(codes.InvalidArgument, "the first message is not open: send open first")
+	case <-late.C:
+		return nil, status.Errorf(codes.DeadlineExceeded, "no message for %v: send open first", s.cfg.Limits.OpenTimeout)
+	case <-s.draining:
+		return nil, errDraining
+	case <-ctx.Done():
+		return nil, status.FromContextError(ctx.Err()).Err()
+	}
+}
+
+// broken says why a message could not be received.
+func (s *Server) broken(err error) error {
+	if status.Code(err) == codes.ResourceExhausted {
+		return status.Errorf(codes.ResourceExhausted, "a message is over %d bytes: send smaller batches", s.cfg.Limits.MessageBytes)
+	}
+	return err
+}
+
+// carry moves messages between a stream and its owner until one of them is
+// done. It holds at most one message; while the owner's queue is full it reads
+// no further.
+func (s *Server) carry(ctx context.Context, stream feedStream, requests <-chan received, o *owner, a *attachment) error {
+	var held *work
+	draining := s.draining
+	stopping := false
+	for {
+		in, from := a.in, requests
+		var w work
+		switch {
+		case held != nil:
+			from, w = nil, *held
+		case stopping:
+			from, w = nil, work{hangup: true, err: errDraining}
+		default:
+			in = nil
+		}
+		select {
+		case r := <-from:
+			next, err := s.request(r)
+			if err != nil {
+				return err
+			}
+			held = &next
+			if next.hangup || next.end {
+				requests = nil // nothing more is taken
+			}
+		case in <- w:
+			if held == nil {
+				stopping = false
+				requests = nil
+			}
+			held = nil
+		case it := <-a.out:
+			if it.last {
+				return it.err
+			}
+			if err := stream.Send(it.message); err != nil {
+				return err
+			}
+		case <-a.taken:
+			return errTakenOver
+		case <-o.dead:
+			return o.err
+		case <-draining:
+			draining, stopping = nil, requests != nil
+		case <-ctx.Done():
+			return status.FromContextError(ctx.Err()).Err()
+		}
+	}
+}
+
+// request turns a message into work.
+func (s *Server) request(r received) (work, error) {
+	switch {
+	case r.err == io.EOF:
+		return work{hangup: true}, nil
+	case r.err != nil:
+		return work{}, s.broken(r.err)
+	case r.message.GetBatch() != nil:
+		return work{batch: r.message.GetBatch()}, nil
+	case r.message.GetEnd() != nil:
+		return work{end: true}, nil
+	case r.message.GetOpen() != nil:
+		return work{}, status.Error(codes.InvalidArgument, "a second open: a stream carries one drive; use another stream")
+	}
+	return work{}, status.Error(codes.InvalidArgument, "an empty message: send a batch or end")
+}

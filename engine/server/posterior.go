@@ -1,0 +1,109 @@
+package server
+
+import (
+	"time"
+
+	"google.golang.org/protobuf/proto"
+	"google.golang.org/protobuf/types/known/timestamppb"
+
+	"leadline/engine/geo"
+	"leadline/engine/sensor"
+	"leadline/engine/summary"
+	"leadline/engine/wire"
+	leadlinev1 "leadline/proto/leadline/v1"
+)
+
+// statuses are the API's words for a summary's.
+var statuses = map[summary.Status]leadlinev1.Status{
+	summary.Contradicted: leadlinev1.Status_STATUS_CONTRADICTED,
+	summary.OffMap:       leadlinev1.Status_STATUS_OFF_MAP,
+	summary.Located:      leadlinev1.Status_STATUS_LOCATED,
+	summary.Ambiguous:    leadlinev1.Status_STATUS_AMBIGUOUS,
+	summary.Unsure:       leadlinev1.Status_STATUS_UNSURE,
+}
+
+// message converts a posterior, as of a time. onRoads says whether a cell's
+// index is that of a directed edge.
+func message(p *summary.Posterior, vehicle string, m Map, now time.Time) *leadlinev1.Posterior {
+	onRoads := m.onRoads()
+	out := &leadlinev1.Posterior{
+		Time:           wire.FromTime(sensor.Time(p.TimeNS)),
+		Vehicle:        vehicle,
+		Map:            m.Name,
+		MapFingerprint: p.Map,
+		Status:         statuses[p.Status],
+		Mean:           wire.FromPosition(p.Mean),
+		Covariance:     covariance(p.Cov),
+		MostProbable: &leadlinev1.Place{
+			Position: wire.FromPosition(p.MostProbable.Position), Probability: p.MostProbable.Mass,
+		},
+		ModeCount: uint32(p.ModeCount), ModeRest: p.ModeRest,
+		Edges: edges(p.Edges), EdgeCount: uint32(p.EdgeCount), EdgeRest: p.EdgeRest,
+		Radii:       &leadlinev1.Radii{Radius50M: p.Radius50M, Radius95M: p.Radius95M, Radius99M: p.Radius99M},
+		Protection:  protection(p.Protection),
+		EntropyNats: p.EntropyNats, LogEvidence: p.LogEvidence,
+		Counts: &leadlinev1.Counts{
+			Accepted: p.Counts.Accepted, Refused: p.Counts.Refused,
+			Pruned: p.Counts.Pruned, LeftMap: p.Counts.LeftMap, Restart: p.Counts.Restart,
+		},
+		GapS: p.GapS, Revises: p.Revises,
+		AsOf: timestamppb.New(now), AgeS: now.Sub(time.Unix(0, p.TimeNS)).Seconds(),
+	}
+	if onRoads {
+		out.MostProbable.Edge = proto.Uint32(uint32(p.MostProbable.Index[0]))
+		out.MostProbable.AlongM = p.MostProbable.AlongM
+		out.MostProbable.Name = p.MostProbable.Name
+	}
+	for _, d := range p.Modes {
+		out.Modes = append(out.Modes, &leadlinev1.Mode{
+			Mass: d.Mass, Mean: wire.FromPosition(d.Mean), Covariance: covariance(d.Cov),
+			Edges: edges(d.Charts[:d.ChartCount]),
+		})
+	}
+	if p.Heading.Known {
+		out.Heading = &leadlinev1.Direction{Deg: geo.Deg(p.Heading.TrueRad), SigmaDeg: geo.Deg(p.Heading.SigmaRad)}
+	}
+	if p.Speed.Known {
+		out.Speed = &leadlinev1.SpeedEstimate{Mps: p.Speed.MPS, SigmaMps: p.Speed.SigmaMPS}
+	}
+	for _, q := range p.Nuisances {
+		out.Nuisances = append(out.Nuisances, &leadlinev1.Nuisance{Name: q.Name, Mean: q.Mean, Sigma: q.Sigma})
+	}
+	for _, e := range p.Evidence {
+		out.Evidence = append(out.Evidence, &leadlinev1.Evidence{
+			Sensor: e.Sensor, Number: e.Number, Kind: e.Kind, LogEvidence: e.LogEvidence,
+		})
+	}
+	return out
+}
+
+func covariance(c summary.Cov) *leadlinev1.Covariance {
+	return &leadlinev1.Covariance{EastM2: c.EE, EastNorthM2: c.EN, NorthM2: c.NN}
+}
+
+func edges(es []summary.Edge) []*leadlinev1.EdgeProbability {
+	out := make([]*leadlinev1.EdgeProbability, len(es))
+	for i, e := range es {
+		out[i] = &leadlinev1.EdgeProbability{Edge: uint32(e.Chart), Name: e.Name, Probability: e.Probability}
+		if e.Twin >= 0 {
+			out[i].Twin = proto.Uint32(uint32(e.Twin))
+		}
+	}
+	return out
+}
+
+func protection(p summary.Protection) *leadlinev1.Protection {
+	out := &leadlinev1.Protection{Risk: p.Risk, UnboundedReason: p.Reason}
+	if p.Bounded {
+		out.RadiusM = proto.Float64(p.RadiusM)
+	}
+	return out
+}
+
+func region(r *summary.Region) *leadlinev1.Region {
+	out := &leadlinev1.Region{Fraction: r.Level, Probability: r.Holds, AreaM2: r.AreaM2, PixelM: r.PixelM}
+	for _, p := range r.Polygons {
+		out.Polygons = append(out.Polygons, wire.FromPolygon(p))
+	}
+	return out
+}

@@ -1,0 +1,217 @@
+package server
+
+import (
+	"context"
+	"fmt"
+	"runtime/debug"
+
+	"google.golang.org/grpc/codes"
+	"google.golang.org/grpc/status"
+	"google.golang.org/protobuf/proto"
+
+	"leadline/engine/filter"
+	"leadline/engine/sensor"
+	"leadline/engine/session"
+	"leadline/engine/wire"
+	leadlinev1 "leadline/proto/leadline/v1"
+)
+
+// onRoads reports whether the map is made of roads.
+func (m Map) onRoads() bool {
+	_, ok := m.Space.(filter.LineSpace)
+	return ok
+}
+
+// open finds the owner of a drive, or makes one. The caller must give it back
+// with leave.
+func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error) {
+	h, err := wire.ToHeader(req.GetHeader())
+	if err != nil {
+		return nil, status.Errorf(codes.InvalidArgument, "open: header: %v", err)
+	}
+	if req.GetDrive() == "" {
+		return nil, status.Error(codes.InvalidArgument, "open: drive is missing: give each drive a new name")
+	}
+	if err := wire.Name("drive", req.GetDrive()); err != nil {
+		return nil, status.Errorf(codes.InvalidArgument, "open: %v", err)
+	}
+	m, ok := s.cfg.find(h.Map)
+	if !ok {
+		var names []string
+		for _, m := range s.cfg.Maps {
+			names = append(names, m.Name)
+		}
+		return nil, status.Errorf(codes.NotFound, "open: header: there is no map %q here: known are %s", h.Map, known(names))
+	}
+	var suite *sensor.Suite
+	if h.Suite != "" {
+		if suite, ok = s.cfg.Suites[h.Suite]; !ok {
+			var names []string
+			for n := range s.cfg.Suites {
+				names = append(names, n)
+			}
+			return nil, status.Errorf(codes.NotFound, "open: header: there is no suite %q here: known are %s", h.Suite, known(names))
+		}
+	}
+	if o, err := s.resume(req); o != nil || err != nil {
+		return o, err
+	}
+	select {
+	case s.openings <- struct{}{}:
+	case <-ctx.Done():
+		return nil, status.FromContextError(ctx.Err()).Err()
+	case <-s.draining:
+		return nil, errDraining
+	}
+	sess, err := s.newSession(session.Config{
+		Vehicle: h.Vehicle, Space: m.Space, Names: m.Names, Suite: suite,
+		Start: start(h.Start), MaxCells: s.cfg.MaxCells,
+	})
+	<-s.openings
+	if err != nil {
+		return nil, err
+	}
+	return s.admit(req, m, sess)
+}
+
+// newSession makes a session, and turns whatever goes wrong into a status.
+func (s *Server) newSession(c session.Config) (sess Session, err error) {
+	defer func() {
+		if r := recover(); r != nil {
+			s.cfg.Log.Error("session cannot be made", "vehicle", c.Vehicle, "panic", r, "stack", string(debug.Stack()))
+			err = status.Errorf(codes.Internal, "open: the session of vehicle %q failed: report it with the server's log", c.Vehicle)
+		}
+	}()
+	sess, err = s.cfg.NewSession(c)
+	if err != nil {
+		return nil, status.Errorf(codes.InvalidArgument, "open: header: %v", err)
+	}
+	return sess, nil
+}
+
+func start(w wire.Start) session.Start {
+	s := session.Start{Kind: session.Anywhere, Point: w.Point, SigmaM: w.SigmaM, Area: w.Area}
+	switch {
+	case w.SigmaM > 0:
+		s.Kind = session.AtPoint
+	case len(w.Area) > 0:
+		s.Kind = session.InArea
+	}
+	return s
+}
+
+// resume returns the owner of a drive that is open already; nil if there is
+// none and one may be made.
+func (s *Server) resume(req *leadlinev1.Open) (*owner, error) {
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	return s.resumeLocked(req)
+}
+
+func (s *Server) resumeLocked(req *leadlinev1.Open) (*owner, error) {
+	if s.closed {
+		return nil, errDraining
+	}
+	o := s.owners[req.GetHeader().GetVehicle()]
+	switch {
+	case o == nil:
+		return nil, nil
+	case o.drive == req.GetDrive():
+		if !proto.Equal(o.header, req.GetHeader()) {
+			return nil, status.Errorf(codes.FailedPrecondition, "open: drive %q of vehicle %q was opened with another header: give the same one, or the drive another name", o.drive, o.vehicle)
+		}
+		o.streams++
+		return o, nil
+	case !o.finished && !req.GetReplace():
+		return nil, status.Errorf(codes.AlreadyExists, "open: vehicle %q has an unfinished drive %q: end that one, or set replace to give it up", o.vehicle, o.drive)
+	}
+	return nil, nil
+}
+
+// admit makes an owner of a session, unless another stream was faster.
+func (s *Server) admit(req *leadlinev1.Open, m Map, sess Session) (*owner, error) {
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	if o, err := s.resumeLocked(req); o != nil || err != nil {
+		return o, err
+	}
+	vehicle := req.GetHeader().GetVehicle()
+	if old := s.owners[vehicle]; old != nil {
+		old.stop(errReplaced)
+		delete(s.owners, vehicle)
+	} else if len(s.owners) >= s.cfg.Limits.Vehicles && !s.makeRoom() {
+		return nil, status.Errorf(codes.ResourceExhausted, "open: the server has its %d vehicles, all of them on a drive: try later, or raise the limit", s.cfg.Limits.Vehicles)
+	}
+	o := &owner{
+		srv: s, vehicle: vehicle, drive: req.GetDrive(), header: req.GetHeader(), m: m, sess: sess,
+		attach: make(chan *attachment), questions: make(chan *question),
+		quit: make(chan struct{}), dead: make(chan struct{}),
+		streams: 1,
+	}
+	s.owners[vehicle] = o
+	s.ended.Add(1)
+	go o.run()
+	s.cfg.Log.Info("drive opened", "vehicle", vehicle, "drive", o.drive, "map", m.Name)
+	return o, nil
+}
+
+// makeRoom drops the session that has been idle longest, if one may go.
+func (s *Server) makeRoom() bool {
+	now := s.cfg.Now()
+	var oldest *owner
+	for _, o := range s.owners {
+		if o.streams > 0 || !o.finished && now.Sub(o.idleSince) < s.cfg.Limits.IdleTimeout {
+			continue
+		}
+		if oldest == nil || o.idleSince.Before(oldest.idleSince) {
+			oldest = o
+		}
+	}
+	if oldest == nil {
+		return false
+	}
+	s.cfg.Log.Info("idle vehicle dropped", "vehicle", oldest.vehicle, "drive", oldest.drive)
+	oldest.stop(errReplaced)
+	delete(s.owners, oldest.vehicle)
+	return true
+}
+
+// leave gives back an owner that open returned.
+func (s *Server) leave(o *owner) {
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	o.streams--
+	o.idleSince = s.cfg.Now()
+}
+
+// finish notes that a drive has ended.
+func (s *Server) finish(o *owner) {
+	s.mu.Lock()
+	o.finished = true
+	s.mu.Unlock()
+	s.cfg.Log.Info("drive ended", "vehicle", o.vehicle, "drive", o.drive, "posteriors", o.posteriors)
+}
+
+// forget takes an owner out, if it is still the vehicle's.
+func (s *Server) forget(o *owner) {
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	if s.owners[o.vehicle] == o {
+		delete(s.owners, o.vehicle)
+	}
+}
+
+// find returns the owner of a vehicle.
+func (s *Server) find(vehicle string) (*owner, error) {
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	o := s.owners[vehicle]
+	if o == nil {
+		what := fmt.Sprintf("there is no vehicle %q here", clip(vehicle))
+		if n := len(s.owners); n == 0 {
+			what += " and no other"
+		}
+		return nil, status.Error(codes.NotFound, what+": feed it first, under the same name")
+	}
+	return o, nil
+}

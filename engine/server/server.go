@@ -1,0 +1,121 @@
+package server
+
+import (
+	"context"
+	"log/slog"
+	"net"
+	"sync"
+	"sync/atomic"
+	"time"
+
+	"google.golang.org/grpc"
+	"google.golang.org/grpc/health"
+	healthv1 "google.golang.org/grpc/health/grpc_health_v1"
+	"google.golang.org/grpc/keepalive"
+	"google.golang.org/grpc/reflection"
+
+	"leadline/engine/session"
+	leadlinev1 "leadline/proto/leadline/v1"
+)
+
+// Server answers vehicles. Use New; its methods may be called from any
+// goroutine.
+type Server struct {
+	leadlinev1.UnimplementedPositionServiceServer
+
+	cfg      Config
+	grpc     *grpc.Server
+	health   *health.Server
+	openings chan struct{} // holds a token a session being made
+	streams  atomic.Int64
+
+	draining chan struct{} // closed when streams should end
+	drain    sync.Once
+
+	mu     sync.Mutex
+	closed bool // no owner may be added
+	owners map[string]*owner
+	ended  sync.WaitGroup // counts owners
+}
+
+// New makes a server, or an error that lists what is wrong with the
+// configuration.
+func New(cfg Config) (*Server, error) {
+	if err := cfg.Validate(); err != nil {
+		return nil, err
+	}
+	cfg.Limits = cfg.Limits.withDefaults()
+	if cfg.NewSession == nil {
+		cfg.NewSession = func(c session.Config) (Session, error) { return session.New(c) }
+	}
+	if cfg.Now == nil {
+		cfg.Now = time.Now
+	}
+	if cfg.Log == nil {
+		cfg.Log = slog.New(slog.DiscardHandler)
+	}
+	s := &Server{
+		cfg:      cfg,
+		health:   health.NewServer(),
+		openings: make(chan struct{}, cfg.Limits.Openings),
+		draining: make(chan struct{}),
+		owners:   map[string]*owner{},
+	}
+	s.grpc = grpc.NewServer(
+		grpc.MaxRecvMsgSize(cfg.Limits.MessageBytes),
+		grpc.MaxHeaderListSize(16<<10),
+		grpc.MaxConcurrentStreams(uint32(cfg.Limits.Streams)),
+		grpc.SharedWriteBuffer(true),
+		grpc.WaitForHandlers(true),
+		// A half-open connection is found within 40 s; clients may look as
+		// often as every 10 s, also between streams.
+		grpc.KeepaliveParams(keepalive.ServerParameters{Time: 30 * time.Second, Timeout: 10 * time.Second}),
+		grpc.KeepaliveEnforcementPolicy(keepalive.EnforcementPolicy{MinTime: 10 * time.Second, PermitWithoutStream: true}),
+	)
+	leadlinev1.RegisterPositionServiceServer(s.grpc, s)
+	healthv1.RegisterHealthServer(s.grpc, s.health)
+	reflection.Register(s.grpc)
+	s.health.SetServingStatus(leadlinev1.PositionService_ServiceDesc.ServiceName, healthv1.HealthCheckResponse_SERVING)
+	return s, nil
+}
+
+// Serve answers on a listener, which it closes, until Shutdown; then it
+// returns nil.
+func (s *Server) Serve(l net.Listener) error { return s.grpc.Serve(l) }
+
+// Shutdown stops the server in order: it tells health checks, takes no more
+// calls, answers what streams have already sent, ends them with UNAVAILABLE,
+// and drops the sessions. What is not done when ctx is, is cut off, and
+// Shutdown returns ctx's error.
+func (s *Server) Shutdown(ctx context.Context) error {
+	s.health.Shutdown()
+	s.drain.Do(func() { close(s.draining) })
+	done := make(chan struct{})
+	go func() {
+		s.grpc.GracefulStop()
+		close(done)
+	}()
+	var err error
+	select {
+	case <-done:
+	case <-ctx.Done():
+		err = ctx.Err()
+		// The owners first: a handler may wait for one.
+		s.stopOwners()
+		s.grpc.Stop()
+		<-done
+	}
+	s.stopOwners()
+	s.ended.Wait()
+	return err
+}
+
+func (s *Server) stopOwners() {
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	s.closed = true
+	for _, o := range s.owners {
+		o.stop(errDraining)
+	}
+	clear(s.owners)
+}
