@@ -55,13 +55,16 @@ var mayImport = map[string][]string{
 	"fixtures":               {},
 	"fixtures/sim":           {"engine/geo", "network", "terrain"},
 	"fixtures/outside":       {},
+	"fixtures/heights":       {},
+	"fixtures/reference":     {"engine/geo"},
+	"fixtures/drives":        {"engine/drivefile", "engine/geo", "engine/sensor", "fixtures/sim"},
 	"fixtures/outside/fetch": {"fixtures/outside"},
 	"tools/...":              {},
 }
 
 // notKernel may not even import kernel: the simulator shares nothing with the
 // filter's models beyond geodesy, and tools belong to no package of ours.
-var notKernel = []string{"fixtures/sim", "fixtures/outside", "fixtures/outside/fetch", "tools/..."}
+var notKernel = []string{"fixtures/sim", "fixtures/heights", "fixtures/reference", "fixtures/outside", "fixtures/outside/fetch", "tools/..."}
 
 // knowProtobuf may import the API and the protobuf and gRPC libraries.
 var knowProtobuf = []string{api, "engine/server", "engine/client", "engine/page", "engine/drivefile", "cmd/leadline"}
