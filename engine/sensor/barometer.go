@@ -32,14 +32,16 @@ func (m Barometer) Check(Time) error {
 
 // The standard atmosphere up to 20 km. Source: ISO 2533:1975: T = T0 - L·h up
 // to 11 km and constant above, p by the hydrostatic equation with g and R
-// constant over geopotential height h.
+// constant over geopotential height h. The molar mass is taken to the six
+// figures that give the printed 22632.06 Pa at 11 km (28.96442 gives 0.02 Pa
+// less, a millimetre and a half of height).
 const (
-	isaT0         = 288.15    // K, at sea level
-	isaP0HPa      = 1013.25   // at sea level
-	isaLapse      = 0.0065    // K/m
-	isaR          = 287.05287 // J/(kg K), dry air
-	isaG          = 9.80665   // m/s²
-	isaTropopause = 11000.0   // m
+	isaT0         = 288.15            // K, at sea level
+	isaP0HPa      = 1013.25           // at sea level
+	isaLapse      = 0.0065            // K/m
+	isaR          = 8314.32 / 28.9644 // J/(kg K), dry air: the gas constant over its molar mass
+	isaG          = 9.80665           // m/s²
+	isaTropopause = 11000.0           // m
 )
 
 // StandardPressureHPa returns the pressure of the standard atmosphere at a

@@ -20,6 +20,7 @@ const (
 	maxSuiteDepth = 8   // nesting of [ and {; of indentation: 8·8 columns
 	maxSensors    = 256
 	maxPlaces     = 4096
+	maxFindings   = 20 // listed in one error
 )
 
 // ParseSuite reads a suite from YAML. name is used in errors only. An unknown
@@ -75,6 +76,11 @@ func ParseSuite(name string, text []byte) (s *Suite, err error) {
 	}
 	if found := s.problems(); len(found) > 0 {
 		var all []string
+		more := ""
+		if len(found) > maxFindings {
+			more = fmt.Sprintf("; and %d more", len(found)-maxFindings)
+			found = found[:maxFindings]
+		}
 		for i := range found {
 			found[i].line = lineOf(file, found[i].path)
 		}
@@ -82,7 +88,7 @@ func ParseSuite(name string, text []byte) (s *Suite, err error) {
 		for _, f := range found {
 			all = append(all, fail(f.line, "%s", f).Error())
 		}
-		return nil, errors.New(strings.Join(all, "; "))
+		return nil, errors.New(strings.Join(all, "; ") + more)
 	}
 	return s, nil
 }
