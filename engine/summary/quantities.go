@@ -1,0 +1,141 @@
+package summary
+
+import (
+	"math"
+
+	"leadline/engine/filter"
+	"leadline/engine/geo"
+	"leadline/engine/kernel"
+)
+
+// noHeading is the standard deviation of a direction that is uniform on the
+// circle, π/sqrt(3).
+const noHeading = math.Pi / 1.7320508075688772
+
+// quantities fills heading, nuisances and entropy.
+//
+// A quantity's mean is Σ m·mean and its variance Σ m·(var + (mean - Mean)²).
+// For an angle the mean resultant is Σ m·e^(-var/2)·(sin, cos), the one of
+// wrapped Gaussians; the mean is its direction and sigma sqrt(-2 ln R), which
+// is the Gaussian's own where it is small (Mardia & Jupp, Directional
+// Statistics, ch. 2 and 3).
+func (s *Summarizer) quantities(dst *Posterior, in *Input) {
+	b := in.Belief
+	k := b.K()
+	dst.Heading = Direction{}
+	dst.Nuisances = dst.Nuisances[:0]
+	for q := b.Dim; q < k; q++ {
+		mean, sigma := s.moments(in, q, k, b.Quantities[q].Angular)
+		if b.Quantities[q].Name == filter.Heading {
+			dst.Heading = Direction{true, geo.WrapCompass(mean + s.turned.g), sigma}
+			continue
+		}
+		dst.Nuisances = append(dst.Nuisances, Nuisance{b.Quantities[q].Name, mean, sigma})
+	}
+	dst.EntropyNats = s.entropy(in)
+}
+
+func (s *Summarizer) moments(in *Input, q, k int, angular bool) (mean, sigma float64) {
+	means, covs := in.Cloud.Mean, in.Belief.Cov
+	size, at := k*(k+1)/2, filter.Packed(q, q)
+	if angular {
+		sin, cos := 0.0, 0.0
+		for i, m := range s.mass {
+			m *= kernel.Exp(-0.5 * covs[i*size+at])
+			sn, c := kernel.Sincos(means[i*k+q])
+			sin += float64(m * sn)
+			cos += float64(m * c)
+		}
+		r := float64(sin*sin) + float64(cos*cos)
+		sigma = noHeading
+		if r > 0 {
+			sigma = math.Min(math.Sqrt(math.Max(-kernel.Log(r), 0)), noHeading)
+		}
+		return kernel.Atan2(sin, cos), sigma
+	}
+	first := means[q]
+	for i, m := range s.mass {
+		mean += float64(m * (means[i*k+q] - first))
+	}
+	mean += first
+	variance := 0.0
+	for i, m := range s.mass {
+		d := means[i*k+q] - mean
+		variance += float64(m * (covs[i*size+at] + float64(d*d)))
+	}
+	return mean, math.Sqrt(math.Max(variance, 0))
+}
+
+// entropy returns the differential entropy of the place, in nats, relative to
+// 1 m or 1 m²: by the chain rule that of the cells and the mean one within a
+// cell,
+//
+//	H = Σ m·(-ln m + h),  h = min(ln size, ½ ln((2πe)^d·det)),
+//
+// where det is the variance (or determinant) of what the cell holds. Both parts
+// of h bound the entropy within the cell; the first is met by a cell that is
+// filled evenly, the second by a Gaussian much narrower than it. So H does not
+// depend on the width of the cells, except by some 0.15 nat where they are about
+// as wide as the whole belief. A point has entropy ln(1e-12).
+func (s *Summarizer) entropy(in *Input) float64 {
+	c, b := in.Cloud, in.Belief
+	h := 0.0
+	for i := 0; i < len(s.mass); {
+		// One cell: entries i to j.
+		j := i + 1
+		if len(b.Key) > 0 {
+			for j < len(s.mass) && b.Key[j] == b.Key[i] {
+				j++
+			}
+		}
+		m := 0.0
+		for _, v := range s.mass[i:j] {
+			m += v
+		}
+		if m > 0 {
+			var logDet, logSize float64
+			const ln2PiE = 2*kernel.LogSqrt2Pi + 1
+			if s.dim == 1 {
+				mean, v := 0.0, 0.0
+				for e := i; e < j; e++ {
+					mean += float64(s.mass[e] * (c.AlongM[e] - c.AlongM[i]))
+				}
+				mean = c.AlongM[i] + mean/m
+				for e := i; e < j; e++ {
+					d := c.AlongM[e] - mean
+					v += float64(s.mass[e] * (c.VarM2[e] + float64(d*d)))
+				}
+				logDet = 0.5 * (ln2PiE + kernel.Log(math.Max(v/m, 1e-24)))
+				logSize = kernel.Log(in.Lines.WidthM[c.Chart[i]])
+			} else {
+				det := s.cellCov(i, j, m)
+				logDet = ln2PiE + 0.5*kernel.Log(math.Max(float64(det.EE*det.NN)-float64(det.EN*det.EN), 1e-24))
+				logSize = 2 * kernel.Log(b.Lattice.SpacingM)
+			}
+			h += float64(m * (math.Max(math.Min(logSize, logDet), -27.6) - kernel.Log(m)))
+		}
+		i = j
+	}
+	return h
+}
+
+// cellCov is the covariance of entries i to j, whose mass is m.
+func (s *Summarizer) cellCov(i, j int, m float64) Cov {
+	if j == i+1 {
+		return s.covs[i]
+	}
+	var mean geo.Point
+	for e := i; e < j; e++ {
+		mean.E += float64(s.mass[e] / m * (s.east[e] - s.east[i]))
+		mean.N += float64(s.mass[e] / m * (s.north[e] - s.north[i]))
+	}
+	var c Cov
+	for e := i; e < j; e++ {
+		w, v := s.mass[e]/m, s.covs[e]
+		de, dn := s.east[e]-s.east[i]-mean.E, s.north[e]-s.north[i]-mean.N
+		c.EE += float64(w * (v.EE + float64(de*de)))
+		c.EN += float64(w * (v.EN + float64(de*dn)))
+		c.NN += float64(w * (v.NN + float64(dn*dn)))
+	}
+	return c
+}
