@@ -14,6 +14,7 @@ import (
 	"slices"
 	"strconv"
 	"strings"
+	"sync"
 	"testing"
 )
 
@@ -26,12 +27,28 @@ type sourceFile struct {
 	ast  *ast.File
 }
 
-// load parses every non-test file of the module.
+// sources are the parsed files and where their positions are.
+type sources struct {
+	files []sourceFile
+	fset  *token.FileSet
+}
+
+// load returns every non-test file of the module.
 func load(t *testing.T) (files []sourceFile, fset *token.FileSet) {
 	t.Helper()
-	root, err := filepath.Abs("..")
+	s, err := parseOnce()
 	if err != nil {
 		t.Fatal(err)
+	}
+	return s.files, s.fset
+}
+
+var parseOnce = sync.OnceValues(parse)
+
+func parse() (sources, error) {
+	root, err := filepath.Abs("..")
+	if err != nil {
+		return sources{}, err
 	}
 	cmd := exec.Command("go", "list", "-e", "-json=ImportPath,Dir,GoFiles,CgoFiles,IgnoredGoFiles", "./...")
 	cmd.Dir = root
@@ -39,9 +56,9 @@ func load(t *testing.T) (files []sourceFile, fset *token.FileSet) {
 	cmd.Stderr = &stderr
 	out, err := cmd.Output()
 	if err != nil {
-		t.Fatalf("go list: %v\n%s", err, stderr.String())
+		return sources{}, fmt.Errorf("go list: %w\n%s", err, stderr.String())
 	}
-	fset = token.NewFileSet()
+	s := sources{fset: token.NewFileSet()}
 	for decoder := json.NewDecoder(bytes.NewReader(out)); ; {
 		var p struct {
 			ImportPath, Dir                   string
@@ -50,7 +67,7 @@ func load(t *testing.T) (files []sourceFile, fset *token.FileSet) {
 		if err := decoder.Decode(&p); errors.Is(err, io.EOF) {
 			break
 		} else if err != nil {
-			t.Fatalf("go list: %v", err)
+			return sources{}, fmt.Errorf("go list: %w", err)
 		}
 		pkg := strings.TrimPrefix(strings.TrimPrefix(p.ImportPath, module), "/")
 		for _, name := range slices.Concat(p.GoFiles, p.CgoFiles, p.IgnoredGoFiles) {
@@ -58,21 +75,21 @@ func load(t *testing.T) (files []sourceFile, fset *token.FileSet) {
 				continue
 			}
 			path := filepath.Join(p.Dir, name)
-			file, err := parser.ParseFile(fset, path, nil, parser.SkipObjectResolution)
+			file, err := parser.ParseFile(s.fset, path, nil, parser.SkipObjectResolution)
 			if err != nil {
-				t.Fatalf("%v", err)
+				return sources{}, err
 			}
 			below, err := filepath.Rel(root, path)
 			if err != nil {
-				t.Fatal(err)
+				return sources{}, err
 			}
-			files = append(files, sourceFile{pkg, filepath.ToSlash(below), file})
+			s.files = append(s.files, sourceFile{pkg, filepath.ToSlash(below), file})
 		}
 	}
-	if len(files) == 0 {
-		t.Fatal("go list named no file of ours")
+	if len(s.files) == 0 {
+		return sources{}, errors.New("go list named no file of ours")
 	}
-	return files, fset
+	return s, nil
 }
 
 func imports(f sourceFile) []string {
