@@ -68,6 +68,12 @@ func (g Grid) Middle() geo.LonLat {
 	return g.Position(float64(g.Cols-1)/2, float64(g.Rows-1)/2)
 }
 
+// Contains reports whether a position lies among the samples, edges included.
+func (g Grid) Contains(p geo.LonLat) bool {
+	c, r := g.index(p)
+	return c >= 0 && c <= float64(g.Cols-1) && r >= 0 && r <= float64(g.Rows-1)
+}
+
 // index returns column and row of a position. Longitudes are taken the short
 // way round from the grid's middle, so that grids may cross ±180°.
 func (g Grid) index(p geo.LonLat) (col, row float64) {

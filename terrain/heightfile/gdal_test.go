@@ -87,9 +87,10 @@ func compareValues(t *testing.T, what string, got []float32, want []float64, nod
 	}
 }
 
-// TestEveryGeoTIFF compares this reader with GDAL's on every sample type,
-// compression and predictor, in little-endian strips of a classic TIFF and in
-// big-endian tiles of a BigTIFF.
+// TestEveryGeoTIFF compares this reader with GDAL's on every sample type with
+// every compression and predictor, in turn in little-endian strips of a
+// classic TIFF and in big-endian tiles of a BigTIFF, so that each compression
+// and predictor meets both.
 func TestEveryGeoTIFF(t *testing.T) {
 	tool := outside.Tool(t, "gdal_translate", "gdal-bin")
 	dir := t.TempDir()
@@ -99,35 +100,35 @@ func TestEveryGeoTIFF(t *testing.T) {
 		{"-co", "TILED=YES", "-co", "BLOCKXSIZE=32", "-co", "BLOCKYSIZE=16", "-co", "ENDIANNESS=BIG", "-co", "BIGTIFF=YES"},
 	}
 	n := 0
-	for _, kind := range []string{"Byte", "UInt16", "Int16", "UInt32", "Int32", "Float32", "Float64"} {
+	for k, kind := range []string{"Byte", "UInt16", "Int16", "UInt32", "Int32", "Float32", "Float64"} {
 		plain := filepath.Join(dir, kind+".tif")
 		run(t, tool, "-q", "-ot", kind, "-a_nodata", "7", source, plain)
 		want := gdalValues(t, tool, plain)
-		for _, pack := range []string{"NONE", "LZW 1", "LZW 2", "LZW 3", "DEFLATE 1", "DEFLATE 2", "DEFLATE 3"} {
+		for j, pack := range []string{"NONE", "LZW 1", "LZW 2", "LZW 3", "DEFLATE 1", "DEFLATE 2", "DEFLATE 3"} {
 			name, predictor, _ := strings.Cut(pack, " ")
 			if predictor == "3" && !strings.HasPrefix(kind, "Float") {
 				continue
 			}
-			for i, layout := range layouts {
-				what := fmt.Sprintf("%s %s layout %d", kind, pack, i)
-				out := filepath.Join(dir, "out.tif")
-				args := append([]string{"-q", "-co", "COMPRESS=" + name}, layout...)
-				if predictor != "" {
-					args = append(args, "-co", "PREDICTOR="+predictor)
-				}
-				if predictor == "3" { // GDAL 3.6 writes garbage for it in big-endian files, to its own eyes too
-					if i := slices.Index(args, "ENDIANNESS=BIG"); i >= 0 {
-						args[i] = "ENDIANNESS=LITTLE"
-					}
-				}
-				run(t, tool, append(args, plain, out)...)
-				res, err := Read(out, Options{})
-				if err != nil {
-					t.Fatalf("%s: %v", what, err)
-				}
-				compareValues(t, what, res.Raster.Samples(), want, 7)
-				n++
+			i := (k + j) % 2
+			layout := layouts[i]
+			what := fmt.Sprintf("%s %s layout %d", kind, pack, i)
+			out := filepath.Join(dir, "out.tif")
+			args := append([]string{"-q", "-co", "COMPRESS=" + name}, layout...)
+			if predictor != "" {
+				args = append(args, "-co", "PREDICTOR="+predictor)
 			}
+			if predictor == "3" { // GDAL 3.6 writes garbage for it in big-endian files, to its own eyes too
+				if i := slices.Index(args, "ENDIANNESS=BIG"); i >= 0 {
+					args[i] = "ENDIANNESS=LITTLE"
+				}
+			}
+			run(t, tool, append(args, plain, out)...)
+			res, err := Read(out, Options{})
+			if err != nil {
+				t.Fatalf("%s: %v", what, err)
+			}
+			compareValues(t, what, res.Raster.Samples(), want, 7)
+			n++
 		}
 	}
 	t.Logf("%d files agree with GDAL", n)
