@@ -50,25 +50,31 @@ type builder struct {
 	forward, backward []int32
 	// pointHeight is the height of each vertex, NaN where unknown.
 	pointHeight []float64
-	text        map[string]int32
+	words       [4]interner // name, ref, class, feature
 }
 
-// intern returns the index of s in the map's text.
-func (b *builder) intern(s string) int32 {
-	if i, ok := b.text[s]; ok {
-		return i
+// interner collects a column of words.
+type interner struct {
+	words *Words
+	known map[string]int32
+}
+
+func (n *interner) add(s string) {
+	i, ok := n.known[s]
+	if !ok {
+		i = int32(len(n.words.Text))
+		n.known[s] = i
+		n.words.Text = append(n.words.Text, s)
 	}
-	i := int32(len(b.d.Text))
-	b.text[s] = i
-	b.d.Text = append(b.d.Text, s)
-	return i
+	n.words.Index = append(n.words.Index, i)
 }
 
 // charts lays out the directed edges and their geometry.
 func (b *builder) charts() error {
 	d := b.d
-	b.text = map[string]int32{}
-	b.intern("")
+	for i, w := range [4]*Words{&d.Name, &d.Ref, &d.Class, &d.Feature} {
+		b.words[i] = interner{w, map[string]int32{}}
+	}
 	b.forward = make([]int32, len(b.graph.Roads))
 	b.backward = make([]int32, len(b.graph.Roads))
 	d.VertexStart = append(d.VertexStart, 0)
@@ -137,10 +143,9 @@ func (b *builder) chart(road int32, reversed bool, kept []int32, alongM []float6
 		from, to = to, from
 	}
 	d.From, d.To, d.Twin = append(d.From, from), append(d.To, to), append(d.Twin, -1)
-	d.Name = append(d.Name, b.intern(r.Attr.Name))
-	d.Ref = append(d.Ref, b.intern(r.Attr.Ref))
-	d.Class = append(d.Class, b.intern(r.Attr.Class))
-	d.Feature = append(d.Feature, b.intern(r.Feature))
+	for i, s := range [4]string{r.Attr.Name, r.Attr.Ref, r.Attr.Class, r.Feature} {
+		b.words[i].add(s)
+	}
 	d.Speed = append(d.Speed, float32(r.Attr.SpeedMps))
 	var flags uint8
 	if r.Attr.Tunnel {

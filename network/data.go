@@ -25,14 +25,13 @@ type Data struct {
 	// Charts.
 	From, To []int32 // junctions
 	Twin     []int32 // the same road the other way, -1 if that is not allowed
-	Name     []int32 // indices into Text
-	Ref      []int32
-	Class    []int32
-	Feature  []int32
+	Name     Words
+	Ref      Words
+	Class    Words
+	Feature  Words
 	Speed    []float32 // speed limit, m/s, 0 if unknown
 	Flags    []uint8   // see the Flag constants
 	Layer    []int8
-	Text     []string // distinct strings; Text[0] is ""
 
 	// Vertices: the polyline in the frame, and the true distance along it,
 	// from 0 to the chart's length, strictly increasing.
@@ -56,6 +55,16 @@ type Data struct {
 	LinkTo     []int32
 	LinkWeight []float64
 }
+
+// Words is a column of strings, of which many are alike: entry c is
+// Text[Index[c]].
+type Words struct {
+	Index []int32
+	Text  []string
+}
+
+// Of returns an entry.
+func (w *Words) Of(chart int32) string { return w.Text[w.Index[chart]] }
 
 // Flags of a chart.
 const (
@@ -110,14 +119,16 @@ func (d *Data) EachColumn(f func(name string, bytes []byte)) {
 	f("from", Bytes(d.From))
 	f("to", Bytes(d.To))
 	f("twin", Bytes(d.Twin))
-	f("name", Bytes(d.Name))
-	f("ref", Bytes(d.Ref))
-	f("class", Bytes(d.Class))
-	f("feature", Bytes(d.Feature))
+	for _, w := range []struct {
+		name string
+		*Words
+	}{{"name", &d.Name}, {"ref", &d.Ref}, {"class", &d.Class}, {"feature", &d.Feature}} {
+		f(w.name, Bytes(w.Index))
+		f(w.name+" text", textBytes(w.Text))
+	}
 	f("speed", Bytes(d.Speed))
 	f("flags", d.Flags)
 	f("layer", Bytes(d.Layer))
-	f("text", textBytes(d.Text))
 	f("vertex start", Bytes(d.VertexStart))
 	f("east", Bytes(d.East))
 	f("north", Bytes(d.North))
@@ -163,8 +174,8 @@ func (d *Data) Check() error {
 		name string
 		n    int
 	}{
-		{"to", len(d.To)}, {"twin", len(d.Twin)}, {"name", len(d.Name)}, {"ref", len(d.Ref)},
-		{"class", len(d.Class)}, {"feature", len(d.Feature)}, {"speed", len(d.Speed)},
+		{"to", len(d.To)}, {"twin", len(d.Twin)}, {"name", len(d.Name.Index)}, {"ref", len(d.Ref.Index)},
+		{"class", len(d.Class.Index)}, {"feature", len(d.Feature.Index)}, {"speed", len(d.Speed)},
 		{"flags", len(d.Flags)}, {"layer", len(d.Layer)},
 	} {
 		if c.n != n {
@@ -230,9 +241,9 @@ func (d *Data) checkChart(c int) error {
 	if t := d.Twin[c]; t < -1 || t >= n || t == int32(c) || (t >= 0 && d.Twin[t] != int32(c)) {
 		return fmt.Errorf("twin %d is not another edge's, or that one's twin is another", t)
 	}
-	for _, i := range [4]int32{d.Name[c], d.Ref[c], d.Class[c], d.Feature[c]} {
-		if i < 0 || int(i) >= len(d.Text) {
-			return fmt.Errorf("text %d is not among the %d", i, len(d.Text))
+	for _, w := range [4]*Words{&d.Name, &d.Ref, &d.Class, &d.Feature} {
+		if i := w.Index[c]; i < 0 || int(i) >= len(w.Text) {
+			return fmt.Errorf("text %d is not among the %d", i, len(w.Text))
 		}
 	}
 	if v := d.Speed[c]; !(v >= 0 && v <= 1000) {

@@ -34,7 +34,7 @@ func (m *Map) buildIndex() *index {
 	x := &index{byName: map[string][]int32{}}
 	d := m.d
 	for c := range int32(m.Charts()) {
-		if name := d.Text[d.Name[c]]; name != "" {
+		if name := d.Name.Of(c); name != "" {
 			x.byName[name] = append(x.byName[name], c)
 		}
 		if t := d.Twin[c]; t >= 0 && t < c {

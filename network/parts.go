@@ -8,17 +8,17 @@ import (
 )
 
 // Name returns the name of a chart's road, "" if it has none.
-func (m *Map) Name(chart int32) string { return m.d.Text[m.d.Name[chart]] }
+func (m *Map) Name(chart int32) string { return m.d.Name.Of(chart) }
 
 // Ref returns the road number of a chart's road, "" if it has none.
-func (m *Map) Ref(chart int32) string { return m.d.Text[m.d.Ref[chart]] }
+func (m *Map) Ref(chart int32) string { return m.d.Ref.Of(chart) }
 
 // Class returns the value of the source's highway tag, "" if it has none.
-func (m *Map) Class(chart int32) string { return m.d.Text[m.d.Class[chart]] }
+func (m *Map) Class(chart int32) string { return m.d.Class.Of(chart) }
 
 // Feature names the feature of the source that a chart came from, the first of
 // them where several were joined end to end.
-func (m *Map) Feature(chart int32) string { return m.d.Text[m.d.Feature[chart]] }
+func (m *Map) Feature(chart int32) string { return m.d.Feature.Of(chart) }
 
 // SpeedLimit returns the speed limit in m/s, 0 if unknown.
 func (m *Map) SpeedLimit(chart int32) float64 { return float64(m.d.Speed[chart]) }
