@@ -76,7 +76,8 @@ type Tiles struct {
 	Mass []float64 // TileSide² a tile
 	// Surplus is by how much the variance of the lattice's masses exceeds
 	// the belief's own (east-east, east-north, north-north, m²): what
-	// changing the spacing added. Predict takes it back from the next spread.
+	// changing the spacing added. Predict takes it back from the next spread;
+	// Update forgets it.
 	Surplus [3]float64
 }
 

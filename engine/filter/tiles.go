@@ -262,6 +262,9 @@ func (b *Belief) updateTiles(space PlaneSpace, l any, w *Workspace) (float64, er
 	if err != nil {
 		return logEvidence, err
 	}
+	// The excess variance was that of the belief before; the sharper one after
+	// has less of it, by (variance after / before)², and that is not kept.
+	t.Surplus = [3]float64{}
 	before := b.Pruned
 	b.dropTiles()
 	if lost := b.Pruned - before; lost > 0 {

@@ -88,7 +88,8 @@ func flatten(next [][]Link) filter.Links {
 // distance along it; every heading is 0.
 func (g *Graph) Sample(dst *filter.Columns, chart []int32, alongM []float64, _ float64) {
 	for i := range alongM {
-		dst.East[i], dst.North[i] = float64(chart[i]), alongM[i]
+		dst.East[i] = float64(chart[i])
+		dst.North[i] = math.Min(math.Max(alongM[i], 0), g.LengthM[chart[i]])
 		dst.TangentE[i], dst.TangentN[i] = 0, 1
 		if dst.Wants&filter.WantHeading != 0 {
 			dst.Heading[i], dst.Curvature[i], dst.HeadingVar[i] = 0, 0, 0.03
