@@ -8,7 +8,7 @@ import (
 
 // skew is the meridian convergence around a point, by interpolation between
 // four exact values 20 km to either side, in E, N and E·N. Within 20 km of
-// the point it is good to 1e-6 rad, within 100 km to 1e-4 (the tests compare
+// the point it is good to 2e-6 rad, within 100 km to 1e-4 (the tests compare
 // at 60° latitude): far below any bearing.
 type skew struct {
 	at             geo.Point
