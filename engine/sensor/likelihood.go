@@ -37,9 +37,11 @@ type Context struct {
 
 // Named is a space that has named parts.
 type Named interface {
-	// ChartsNamed returns the charts of the roads of a name, ascending; none
-	// if there is no such road.
-	ChartsNamed(name string) []int32
+	// Named returns the charts of the roads of a name, ascending; none if
+	// there is no such road.
+	Named(name string) []int32
+	// Polyline returns the vertices of a chart in the frame.
+	Polyline(chart int32) (eastM, northM []float64)
 }
 
 // ErrWrongSpace is what Likelihoods and Supports return (wrapped) for a kind

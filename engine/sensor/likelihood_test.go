@@ -453,10 +453,40 @@ func TestSightings(t *testing.T) {
 	if _, err := Likelihoods(Event{Sensor: "sighting", Measurement: Sighting{Road: "Nowhere"}}, c); err == nil || !strings.Contains(err.Error(), `"Nowhere"`) {
 		t.Errorf("an unknown road: %v", err)
 	}
+	c.Roads = twoRoads{}
+	ls, err := Likelihoods(Event{Sensor: "sighting", Measurement: Sighting{Road: "Bent Lane", Mistaken: 0.1}}, c)
+	if err != nil {
+		t.Fatal(err)
+	}
+	dst := make([]float64, 5)
+	ls[0].(filter.Likelihood).LogLikelihood(dst, w.spot(filter.WantPosition,
+		geo.Point{E: 30, N: 40}, geo.Point{E: 60, N: 90}, geo.Point{E: 30, N: 40.2}, geo.Point{E: 60, N: 131}, geo.Point{E: 10, N: 100}))
+	for i, want := range []float64{math.Log(0.9), math.Log(0.9), math.Log(0.1), math.Log(0.1), math.Log(0.1)} {
+		if !near(dst[i], want, 1e-15) {
+			t.Errorf("road, point %d: %v, want %v", i, dst[i], want)
+		}
+	}
 	c = w.context(2, nil, geo.Point{})
 	if _, err := Likelihoods(Event{Sensor: "sighting", Measurement: Sighting{Road: "High Street"}}, c); !errors.Is(err, ErrWrongSpace) {
 		t.Errorf("a road on a plane: %v", err)
 	}
+}
+
+// twoRoads has one named road of two corners and one without a name.
+type twoRoads struct{}
+
+func (twoRoads) Named(name string) []int32 {
+	if name == "Bent Lane" {
+		return []int32{1}
+	}
+	return nil
+}
+
+func (twoRoads) Polyline(chart int32) (eastM, northM []float64) {
+	if chart == 1 {
+		return []float64{0, 60, 60}, []float64{0, 80, 130}
+	}
+	return []float64{0, 100}, []float64{100, 100}
 }
 
 func TestBeamsAreThinned(t *testing.T) {

@@ -1,7 +1,6 @@
 package sensor
 
 import (
-	"fmt"
 	"math"
 	"slices"
 	"strings"
@@ -309,8 +308,4 @@ func (m *Motion) GapS() float64 {
 	b := m.body()
 	covered := max(b.covered, m.ground(b.turn).covered)
 	return float64(m.To-m.From-covered) / 1e9
-}
-
-func (m *Motion) String() string {
-	return fmt.Sprintf("motion of %v s from %d sensors", m.Seconds(), len(m.sources))
 }

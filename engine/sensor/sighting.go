@@ -69,12 +69,12 @@ func (m Sighting) likelihood(c *Context) (any, error) {
 	if m.Road != "" {
 		var charts []int32
 		if c.Roads != nil {
-			charts = c.Roads.ChartsNamed(m.Road)
+			charts = c.Roads.Named(m.Road)
 		}
 		if len(charts) == 0 {
-			return nil, fmt.Errorf("sighting: the map has no road named %q: check the spelling, or give an area", m.Road)
+			return nil, fmt.Errorf("the map has no road named %q: check the spelling, or give an area", m.Road)
 		}
-		return newOnRoad(charts, in, out)
+		return newOnRoad(c.Roads, charts, in, out), nil
 	}
 	l := &inArea{in: in, out: out}
 	for _, ring := range m.Area {
