@@ -116,7 +116,12 @@ func roadInput(r roads, widthM float64, parts []part) *Input {
 					continue
 				}
 				mean := (phi(a) - phi(z)) / q
-				v := p.sigma * p.sigma * math.Max(1+(a*phi(a)-z*phi(z))/q-mean*mean, 1e-6)
+				v := p.sigma * p.sigma * (1 + (a*phi(a)-z*phi(z))/q - mean*mean)
+				if d := z - a; d < 0.01 {
+					// The differences cancel; the density is linear here.
+					mean = 0.5 * (a + z) * (1 - d*d/12)
+					v = w * w / 12
+				}
 				along := p.along + p.sigma*mean
 				c.Chart = append(c.Chart, int32(chart))
 				c.AlongM = append(c.AlongM, along)

@@ -44,6 +44,7 @@ func (s *Summarizer) findModes(dst *Posterior, in *Input) (best float64, heavy i
 	side = math.Max(side, s.extent()/(1<<30))
 	h := &s.hills
 	h.reset(side, len(s.mass))
+	h.lay(s.east, s.north)
 	h.pour(s.east, s.north, s.mass)
 	h.smooth()
 	h.divide(prominence)
@@ -95,7 +96,7 @@ func (s *Summarizer) gather() {
 	h := &s.hills
 	s.modes = s.modes[:0]
 	s.modeOf = resize(s.modeOf, len(s.mass))
-	rank := resize(s.rank, len(h.key)) // by node; 0 is none
+	rank := resize(s.rank, len(h.mass)) // by node; 0 is none
 	clear(rank)
 	for i, m := range s.mass {
 		node := h.near[i]

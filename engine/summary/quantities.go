@@ -40,8 +40,12 @@ func (s *Summarizer) moments(in *Input, q, k int, angular bool) (mean, sigma flo
 	size, at := k*(k+1)/2, filter.Packed(q, q)
 	if angular {
 		sin, cos := 0.0, 0.0
+		lastVar, shrink := 0.0, 1.0
 		for i, m := range s.mass {
-			m *= kernel.Exp(-0.5 * covs[i*size+at])
+			if v := covs[i*size+at]; v != lastVar {
+				lastVar, shrink = v, kernel.Exp(-0.5*v)
+			}
+			m *= shrink
 			sn, c := kernel.Sincos(means[i*k+q])
 			sin += float64(m * sn)
 			cos += float64(m * c)
@@ -79,7 +83,7 @@ func (s *Summarizer) moments(in *Input, q, k int, angular bool) (mean, sigma flo
 // as wide as the whole belief. A point has entropy ln(1e-12).
 func (s *Summarizer) entropy(in *Input) float64 {
 	c, b := in.Cloud, in.Belief
-	h := 0.0
+	h, last, lastLog := 0.0, 1.0, 0.0
 	for i := 0; i < len(s.mass); {
 		// One cell: entries i to j.
 		j := i + 1
@@ -92,31 +96,53 @@ func (s *Summarizer) entropy(in *Input) float64 {
 		for _, v := range s.mass[i:j] {
 			m += v
 		}
-		if m > 0 {
-			var logDet, logSize float64
-			const ln2PiE = 2*kernel.LogSqrt2Pi + 1
+		if m > leastEntropy {
+			// The smaller of size² and (2πe)^d·det, with its logarithm only
+			// where it is not that of the last cell.
+			var size2, det float64
 			if s.dim == 1 {
-				mean, v := 0.0, 0.0
-				for e := i; e < j; e++ {
-					mean += float64(s.mass[e] * (c.AlongM[e] - c.AlongM[i]))
-				}
-				mean = c.AlongM[i] + mean/m
-				for e := i; e < j; e++ {
-					d := c.AlongM[e] - mean
-					v += float64(s.mass[e] * (c.VarM2[e] + float64(d*d)))
-				}
-				logDet = 0.5 * (ln2PiE + kernel.Log(math.Max(v/m, 1e-24)))
-				logSize = kernel.Log(in.Lines.WidthM[c.Chart[i]])
+				size2 = in.Lines.WidthM[c.Chart[i]]
+				size2 *= size2
+				det = twoPiE * s.alongVariance(c, i, j, m)
 			} else {
-				det := s.cellCov(i, j, m)
-				logDet = ln2PiE + 0.5*kernel.Log(math.Max(float64(det.EE*det.NN)-float64(det.EN*det.EN), 1e-24))
-				logSize = 2 * kernel.Log(b.Lattice.SpacingM)
+				size2 = b.Lattice.SpacingM * b.Lattice.SpacingM
+				size2 *= size2
+				v := s.cellCov(i, j, m)
+				det = twoPiE * twoPiE * (float64(v.EE*v.NN) - float64(v.EN*v.EN))
 			}
-			h += float64(m * (math.Max(math.Min(logSize, logDet), -27.6) - kernel.Log(m)))
+			if v := math.Max(math.Min(size2, det), 1e-24); v != last {
+				last, lastLog = v, 0.5*kernel.Log(v)
+			}
+			h += float64(m * (lastLog - kernel.Log(m)))
 		}
 		i = j
 	}
 	return h
+}
+
+const (
+	twoPiE = 2 * math.Pi * math.E
+	// leastEntropy is the mass below which a cell is left out: even a million
+	// of them change the entropy by less than 1e-6 nats.
+	leastEntropy = 1e-14
+)
+
+// alongVariance is the variance along the line of entries i to j, whose mass is
+// m.
+func (s *Summarizer) alongVariance(c *filter.Cloud, i, j int, m float64) float64 {
+	if j == i+1 {
+		return c.VarM2[i]
+	}
+	mean, v := 0.0, 0.0
+	for e := i; e < j; e++ {
+		mean += float64(s.mass[e] * (c.AlongM[e] - c.AlongM[i]))
+	}
+	mean = c.AlongM[i] + mean/m
+	for e := i; e < j; e++ {
+		d := c.AlongM[e] - mean
+		v += float64(s.mass[e] * (c.VarM2[e] + float64(d*d)))
+	}
+	return v / m
 }
 
 // cellCov is the covariance of entries i to j, whose mass is m.

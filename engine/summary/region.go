@@ -3,7 +3,6 @@ package summary
 import (
 	"fmt"
 	"math"
-	"slices"
 
 	"leadline/engine/geo"
 	"leadline/engine/kernel"
@@ -78,7 +77,8 @@ func (s *Summarizer) Region(level float64) (*Region, error) {
 // raster is mass on pixels; pixel (col, row) spans col…col+1 times the side.
 type raster struct {
 	hills  hills // its hash of nodes, one a pixel
-	order  []hill
+	order  []uint64
+	spare  []uint64
 	chosen []bool
 }
 
@@ -128,21 +128,22 @@ func (s *Summarizer) paint(pixel float64) bool {
 // they hold and how many they are.
 func (r *raster) pick(target float64) (holds float64, n int) {
 	h := &r.hills
-	r.order = resize(r.order, len(h.key))[:0]
+	r.order, r.spare = resize(r.order, len(h.mass))[:0], resize(r.spare, len(h.mass))
 	total := 0.0
-	for i, key := range h.key {
-		total += h.mass[i]
-		r.order = append(r.order, hill{h.mass[i], key, int32(i)})
+	for i, m := range h.mass {
+		total += m
+		r.order = append(r.order, packHeight(m, i))
 	}
-	slices.SortFunc(r.order, byHeight)
+	sortPacked(r.order, r.spare)
 	r.chosen = resize(r.chosen, len(h.key))
 	clear(r.chosen)
 	for _, o := range r.order {
 		if holds >= target*total {
 			break
 		}
-		holds += o.high
-		r.chosen[o.node] = true
+		node := uint32(o)
+		holds += h.mass[node]
+		r.chosen[node] = true
 		n++
 	}
 	return holds / total, n
@@ -177,7 +178,8 @@ func (r *raster) trace(n int) [][]corner {
 	seen := make(map[start]bool, 4*n) // looked up only, never ranged over
 	var rings [][]corner
 	for _, o := range r.order[:n] {
-		pixel := corner{int32(o.key >> 32), int32(uint32(o.key))}
+		key := r.hills.key[uint32(o)]
+		pixel := corner{int32(key >> 32), int32(uint32(key))}
 		// The edges of a pixel: each has it on the left.
 		for way, c := range [4]corner{
 			pixel, {pixel.col + 1, pixel.row}, {pixel.col + 1, pixel.row + 1}, {pixel.col, pixel.row + 1},
