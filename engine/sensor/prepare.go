@@ -8,7 +8,8 @@ import (
 	"leadline/engine/kernel"
 )
 
-// Prepare returns the event as a filter uses it: the sensor's time offset
+// Prepare returns the event as a filter uses it, by a suite whose defaults are
+// filled in (For): the sensor's time offset
 // taken off its times, its sign applied, sigmas that are 0 filled in from the
 // suite, beacons and posts looked up; and checked (Measurement.Check). The
 // error says what cannot be used and what to do.
