@@ -50,6 +50,8 @@ type builder struct {
 	forward, backward []int32
 	// pointHeight is the height of each vertex, NaN where unknown.
 	pointHeight []float64
+	junction    []int32 // the map's number of each of the graph's junctions
+	junctions   int32
 	words       [4]interner // name, ref, class, feature
 }
 
@@ -74,6 +76,10 @@ func (b *builder) charts() error {
 	d := b.d
 	for i, w := range [4]*Words{&d.Name, &d.Ref, &d.Class, &d.Feature} {
 		b.words[i] = interner{w, map[string]int32{}}
+	}
+	b.junction = make([]int32, b.graph.Junctions)
+	for j := range b.junction {
+		b.junction[j] = -1
 	}
 	b.forward = make([]int32, len(b.graph.Roads))
 	b.backward = make([]int32, len(b.graph.Roads))
@@ -135,10 +141,20 @@ func trueAlong(f geo.Frame, points []geo.Point, kept []int32, along []float64) (
 	return kept, along
 }
 
+// renumber numbers the junctions that roads have in the order of their first
+// use, so that no number is above twice the number of charts.
+func (b *builder) renumber(j int32) int32 {
+	if b.junction[j] < 0 {
+		b.junction[j] = b.junctions
+		b.junctions++
+	}
+	return b.junction[j]
+}
+
 func (b *builder) chart(road int32, reversed bool, kept []int32, alongM []float64) int32 {
 	d, r := b.d, &b.graph.Roads[road]
 	c := int32(d.Charts())
-	from, to := r.From, r.To
+	from, to := b.renumber(r.From), b.renumber(r.To)
 	if reversed {
 		from, to = to, from
 	}

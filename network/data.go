@@ -205,6 +205,11 @@ func (d *Data) Check() error {
 			return fmt.Errorf("edge %d: %w", c, err)
 		}
 	}
+	for i := range d.SpreadN {
+		if d.SpreadN[i] == 0 || d.SpreadW[i] == 0 {
+			return fmt.Errorf("station %d: the heading variance is 0", i)
+		}
+	}
 	for i, h := range d.HeightVar {
 		if !(h >= 0) || math.IsInf(float64(h), 0) || math.IsInf(float64(d.Height[i]), 0) {
 			return fmt.Errorf("station %d: height %v m with variance %v m²", i, d.Height[i], h)

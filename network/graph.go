@@ -132,6 +132,12 @@ func (g *Graph) check() error {
 		}
 		vertices += 2 * len(r.Points)
 	}
+	for i, b := range g.Bans {
+		n := int32(len(g.Roads))
+		if b.From < 0 || b.From >= n || b.To < 0 || b.To >= n || b.Via < 0 || b.Via >= g.Junctions {
+			panic(fmt.Sprintf("network: New: ban %d is malformed", i))
+		}
+	}
 	if vertices > MaxVertices {
 		return fmt.Errorf("%d vertices are more than the %d that a map may hold: cut the region", vertices, MaxVertices)
 	}

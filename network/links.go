@@ -19,7 +19,7 @@ import (
 func (b *builder) links() {
 	d := b.d
 	n := d.Charts()
-	start, order := groupBy(d.From, int(b.graph.Junctions))
+	start, order := groupBy(d.From, int(b.junctions))
 	banned := b.bannedTurns()
 	d.LinkStart = make([]int32, 1, n+1)
 	for c := range int32(n) {
@@ -94,9 +94,10 @@ func compareTurns(a, b [2]int32) int {
 func (b *builder) bannedTurns() turnSet {
 	var s turnSet
 	for _, ban := range b.graph.Bans {
+		via := b.junction[ban.Via]
 		for _, from := range [2]int32{b.forward[ban.From], b.backward[ban.From]} {
 			for _, to := range [2]int32{b.forward[ban.To], b.backward[ban.To]} {
-				if from >= 0 && to >= 0 && b.d.To[from] == ban.Via && b.d.From[to] == ban.Via {
+				if from >= 0 && to >= 0 && b.d.To[from] == via && b.d.From[to] == via {
 					s = append(s, [2]int32{from, to})
 				}
 			}

@@ -48,7 +48,7 @@ type kind struct {
 }
 
 var kinds = []kind{
-	{"drivable from everywhere", coreColour, 1.3, 0, func(m *Map, c int32) bool { return true }},
+	{"drivable throughout", coreColour, 1.3, 0, func(m *Map, c int32) bool { return true }},
 	{"on a bridge", bridgeColour, 4.4, 0, func(m *Map, c int32) bool { return m.Bridge(c) }},
 	{"one way in or out", onceColour, 2.6, 0, func(m *Map, c int32) bool { return m.parts().strong[c] != 0 && m.parts().weak[c] == 0 }},
 	{"cut off from the rest", apartColour, 3.2, 0, func(m *Map, c int32) bool { return m.parts().weak[c] != 0 }},
@@ -139,11 +139,11 @@ func (c *canvas) foot(r Report) {
 	draw.Draw(c.img, image.Rect(margin, top, pictureWidth-margin, top+1), image.NewUniform(color.RGBA{0xcc, 0xcc, 0xcc, 0xff}), image.Point{}, draw.Src)
 	// Legend: two rows of kinds and marks.
 	counts := []string{
-		fmt.Sprintf("%.0f km of edges", r.Strong.LargestKM),
-		fmt.Sprintf("%d roads", r.Structures.Bridges),
-		fmt.Sprintf("%d parts", r.Strong.Count-r.Weak.Count),
-		fmt.Sprintf("%d parts, %.1f km", r.Weak.Count-1, r.Weak.OtherKM),
-		fmt.Sprintf("%d roads", r.Structures.Tunnels),
+		fmt.Sprintf("%.0f km", r.Strong.LargestKM),
+		plural(r.Structures.Bridges, "road"),
+		plural(r.Strong.Count-r.Weak.Count, "part"),
+		fmt.Sprintf("%s, %.1f km", plural(r.Weak.Count-1, "part"), r.Weak.OtherKM),
+		plural(r.Structures.Tunnels, "road"),
 	}
 	const column = 380
 	cell := func(i int) (x, y int) { return margin + (i%4)*column, top + 36 + (i/4)*34 }
@@ -201,4 +201,11 @@ func (c *canvas) scaleBar(x, y int) {
 	}
 	c.text(x, y+24, "0", regular, 15, inkColour)
 	c.text(x+length-c.textWidth(label, regular, 15), y+24, label, regular, 15, inkColour)
+}
+
+func plural(n int, what string) string {
+	if n == 1 {
+		return "1 " + what
+	}
+	return fmt.Sprintf("%d %ss", n, what)
 }

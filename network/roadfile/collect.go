@@ -143,6 +143,12 @@ func (c *collector) add(nodes []int32, heightM []float64, feature string, attr n
 	}
 	c.lines = append(c.lines, line{kept, heights, int32(len(c.features) - 1), attr, dir})
 	c.notes.Lines++
+	if attr.Tunnel {
+		c.notes.Tunnels++
+	}
+	if attr.Bridge {
+		c.notes.Bridges++
+	}
 	c.notes.Vertices += len(kept)
 	if c.notes.Vertices > maxVertices || c.notes.Lines > maxFeatures {
 		return fmt.Errorf("more than %d lines or %d vertices: cut the region", maxFeatures, maxVertices)

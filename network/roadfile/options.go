@@ -92,6 +92,9 @@ type Notes struct {
 	Lines    int    // of them taken as roads
 	Vertices int    // of those lines
 
+	Tunnels int // lines in tunnels
+	Bridges int // lines on bridges
+
 	OtherClass    int // lines left out for their highway tag
 	Private       int // for their access tag
 	Areas         int // polygons, and lines with area=yes
@@ -110,7 +113,7 @@ type Notes struct {
 // String describes the notes in a few sentences.
 func (n Notes) String() string {
 	var b strings.Builder
-	fmt.Fprintf(&b, "%s: %d of %d features are roads, with %d vertices.", n.Format, n.Lines, n.Features, n.Vertices)
+	fmt.Fprintf(&b, "%s: %d of %d features are roads, with %d vertices; %d are in tunnels, %d on bridges.", n.Format, n.Lines, n.Features, n.Vertices, n.Tunnels, n.Bridges)
 	list := func(intro string, parts ...any) {
 		sep := intro
 		for i := 0; i < len(parts); i += 2 {
