@@ -39,6 +39,13 @@ func (g Grid) Check() error {
 	case !geo.Finite(g.FirstX, g.FirstY, g.StepX, g.StepY) || g.StepX <= 0 || g.StepY >= 0:
 		return fmt.Errorf("the grid begins at %v, %v with steps %v, %v: steps must be finite, the first positive and the second negative", g.FirstX, g.FirstY, g.StepX, g.StepY)
 	}
+	least, unit := 1e-4, "m" // a tenth of a millimetre: finer is a mistake
+	if g.CRS.Geographic() {
+		least, unit = 1e-9, "°"
+	}
+	if g.StepX < least || -g.StepY < least {
+		return fmt.Errorf("the grid has steps of %v and %v %s, finer than %v %s: are they in another unit?", g.StepX, g.StepY, unit, least, unit)
+	}
 	lastX, lastY := g.FirstX+float64(g.Cols-1)*g.StepX, g.FirstY+float64(g.Rows-1)*g.StepY
 	if g.CRS.Geographic() {
 		if g.FirstY > 90 || lastY < -90 || g.FirstX < -360 || lastX > 540 {

@@ -360,6 +360,7 @@ func TestRefused(t *testing.T) {
 		"huge":         {with(func(g *Grid) { g.Cols, g.Rows = 1<<40, 1<<40 }), nil, Meta{}, "over the limit"},
 		"south first":  {with(func(g *Grid) { g.StepY = 0.001 }), flat(), Meta{}, "steps"},
 		"NaN step":     {with(func(g *Grid) { g.StepX = math.NaN() }), flat(), Meta{}, "steps"},
+		"tiny step":    {with(func(g *Grid) { g.StepX = 1e-300 }), flat(), Meta{}, "in another unit?"},
 		"in metres":    {with(func(g *Grid) { g.FirstX, g.FirstY = 500000, 5500000 }), flat(), Meta{}, "in metres?"},
 		"globe":        {with(func(g *Grid) { g.FirstX, g.StepX = -180, 120 }), flat(), Meta{}, "too much for one local frame"},
 		"continent":    {with(func(g *Grid) { g.FirstX, g.StepX, g.FirstY, g.StepY = 0, 20, 60, -20 }), flat(), Meta{}, "cut out the region"},
