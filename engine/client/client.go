@@ -20,8 +20,16 @@ import (
 	"google.golang.org/grpc"
 	"google.golang.org/grpc/credentials/insecure"
 	"google.golang.org/grpc/keepalive"
+	"google.golang.org/protobuf/proto"
 
 	leadlinev1 "leadline/proto/leadline/v1"
+)
+
+// overhead bounds what a batch's message has beside its measurements: tags,
+// lengths and the sequence; perMeasurement what each adds.
+const (
+	overhead       = 32
+	perMeasurement = 6
 )
 
 // maxMessage bounds a reply; a posterior with its largest regions takes less.
@@ -66,6 +74,8 @@ type Feed struct {
 	cancel context.CancelFunc
 
 	batch  []*leadlinev1.SensorMeasurement
+	bytes  int           // of batch, encoded
+	most   int           // bytes of a batch
 	sent   uint64        // sequence of the last batch made
 	have   uint64        // sequence of the last batch that the server had at the start
 	window chan struct{} // one token a batch without receipt
@@ -99,6 +109,7 @@ func Open(ctx context.Context, conn grpc.ClientConnInterface, d Drive) (*Feed, e
 	d.Batch = min(d.Batch, int(opened.GetMaxBatch()))
 	f := &Feed{
 		drive: d, stream: stream, cancel: cancel, have: opened.GetSequence(),
+		most:   int(opened.GetMaxMessageBytes()) - overhead,
 		window: make(chan struct{}, d.Window), done: make(chan struct{}),
 	}
 	go f.receive()
@@ -126,7 +137,14 @@ func open(ctx context.Context, conn grpc.ClientConnInterface, d Drive) (*leadlin
 // Send sends a measurement, with its batch once that is full, and waits while
 // Window batches have no receipt. It keeps m. An error ends the feed.
 func (f *Feed) Send(m *leadlinev1.SensorMeasurement) error {
+	size := proto.Size(m) + perMeasurement
+	if f.bytes+size > f.most {
+		if err := f.Flush(); err != nil {
+			return err
+		}
+	}
 	f.batch = append(f.batch, m)
+	f.bytes += size
 	if len(f.batch) < f.drive.Batch {
 		return nil
 	}
@@ -140,7 +158,7 @@ func (f *Feed) Flush() error {
 	}
 	f.sent++
 	b := &leadlinev1.Batch{Sequence: f.sent, Measurements: f.batch}
-	f.batch = nil
+	f.batch, f.bytes = nil, 0
 	if f.sent <= f.have {
 		return nil
 	}

@@ -57,7 +57,9 @@ func (s *Server) Feed(stream feedStream) error {
 	return s.carry(ctx, stream, requests, o, a)
 }
 
-// receive passes on what the stream brings until it brings an error.
+// receive passes on what the stream brings until it brings an error. A message
+// over the limit ends the stream with gRPC's own words, which cannot be changed;
+// opened tells the limit beforehand.
 func receive(ctx context.Context, stream feedStream, to chan<- received) {
 	for {
 		m, err := stream.Recv()
@@ -82,7 +84,7 @@ func (s *Server) first(ctx context.Context, requests <-chan received) (*leadline
 			return nil, status.Error(codes.InvalidArgument, "the stream ended without a message: send open first")
 		}
 		if r.err != nil {
-			return nil, s.broken(r.err)
+			return nil, r.err
 		}
 		if m := r.message.GetOpen(); m != nil {
 			return m, nil
@@ -95,14 +97,6 @@ func (s *Server) first(ctx context.Context, requests <-chan received) (*leadline
 	case <-ctx.Done():
 		return nil, status.FromContextError(ctx.Err()).Err()
 	}
-}
-
-// broken says why a message could not be received.
-func (s *Server) broken(err error) error {
-	if status.Code(err) == codes.ResourceExhausted {
-		return status.Errorf(codes.ResourceExhausted, "a message is over %d bytes: send smaller batches", s.cfg.Limits.MessageBytes)
-	}
-	return err
 }
 
 // carry moves messages between a stream and its owner until one of them is
@@ -125,7 +119,7 @@ func (s *Server) carry(ctx context.Context, stream feedStream, requests <-chan r
 		}
 		select {
 		case r := <-from:
-			next, err := s.request(r)
+			next, err := request(r)
 			if err != nil {
 				return err
 			}
@@ -159,12 +153,12 @@ func (s *Server) carry(ctx context.Context, stream feedStream, requests <-chan r
 }
 
 // request turns a message into work.
-func (s *Server) request(r received) (work, error) {
+func request(r received) (work, error) {
 	switch {
 	case r.err == io.EOF:
 		return work{hangup: true}, nil
 	case r.err != nil:
-		return work{}, s.broken(r.err)
+		return work{}, r.err
 	case r.message.GetBatch() != nil:
 		return work{batch: r.message.GetBatch()}, nil
 	case r.message.GetEnd() != nil:

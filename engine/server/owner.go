@@ -136,7 +136,8 @@ func (o *owner) take(a *attachment) {
 	o.at, o.out = a, nil
 	opened := &leadlinev1.Opened{
 		Sequence: o.sequence, MapFingerprint: o.m.Space.Fingerprint(),
-		MaxBatch: uint32(o.srv.cfg.Limits.BatchMeasurements),
+		MaxBatch:        uint32(o.srv.cfg.Limits.BatchMeasurements),
+		MaxMessageBytes: uint32(o.srv.cfg.Limits.MessageBytes),
 	}
 	o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Opened{Opened: opened}})
 }

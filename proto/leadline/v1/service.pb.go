@@ -543,9 +543,11 @@ type Opened struct {
 	// The fingerprint of the map in use.
 	MapFingerprint string `protobuf:"bytes,2,opt,name=map_fingerprint,json=mapFingerprint,proto3" json:"map_fingerprint,omitempty"`
 	// The most measurements that a batch may hold.
-	MaxBatch      uint32 `protobuf:"varint,3,opt,name=max_batch,json=maxBatch,proto3" json:"max_batch,omitempty"`
-	unknownFields protoimpl.UnknownFields
-	sizeCache     protoimpl.SizeCache
+	MaxBatch uint32 `protobuf:"varint,3,opt,name=max_batch,json=maxBatch,proto3" json:"max_batch,omitempty"`
+	// The most bytes that a message may have, encoded.
+	MaxMessageBytes uint32 `protobuf:"varint,4,opt,name=max_message_bytes,json=maxMessageBytes,proto3" json:"max_message_bytes,omitempty"`
+	unknownFields   protoimpl.UnknownFields
+	sizeCache       protoimpl.SizeCache
 }
 
 func (x *Opened) Reset() {
@@ -595,6 +597,13 @@ func (x *Opened) GetMapFingerprint() string {
 func (x *Opened) GetMaxBatch() uint32 {
 	if x != nil {
 		return x.MaxBatch
+	}
+	return 0
+}
+
+func (x *Opened) GetMaxMessageBytes() uint32 {
+	if x != nil {
+		return x.MaxMessageBytes
 	}
 	return 0
 }
@@ -1008,11 +1017,12 @@ const file_leadline_v1_service_proto_rawDesc = "" +
 	"\areceipt\x18\x02 \x01(\v2\x14.leadline.v1.ReceiptH\x00R\areceipt\x126\n" +
 	"\tposterior\x18\x03 \x01(\v2\x16.leadline.v1.PosteriorH\x00R\tposterior\x12-\n" +
 	"\x06closed\x18\x04 \x01(\v2\x13.leadline.v1.ClosedH\x00R\x06closedB\t\n" +
-	"\amessage\"j\n" +
+	"\amessage\"\x96\x01\n" +
 	"\x06Opened\x12\x1a\n" +
 	"\bsequence\x18\x01 \x01(\x04R\bsequence\x12'\n" +
 	"\x0fmap_fingerprint\x18\x02 \x01(\tR\x0emapFingerprint\x12\x1b\n" +
-	"\tmax_batch\x18\x03 \x01(\rR\bmaxBatch\"\x8d\x01\n" +
+	"\tmax_batch\x18\x03 \x01(\rR\bmaxBatch\x12*\n" +
+	"\x11max_message_bytes\x18\x04 \x01(\rR\x0fmaxMessageBytes\"\x8d\x01\n" +
 	"\aReceipt\x12\x1a\n" +
 	"\bsequence\x18\x01 \x01(\x04R\bsequence\x12\x1a\n" +
 	"\baccepted\x18\x02 \x01(\rR\baccepted\x120\n" +
