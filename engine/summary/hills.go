@@ -3,8 +3,6 @@ package summary
 import (
 	"math"
 	"slices"
-
-	"leadline/engine/geo"
 )
 
 // hills is a density on the nodes of a square grid, and its division into peaks
@@ -16,7 +14,7 @@ type hills struct {
 	// The plain array: its first column and row, and its width; 0 if hashed.
 	col0, row0, width int32
 
-	slot  []int32 // open addressing: node + 1, 0 is free; a power of two long
+	slot  []slot // open addressing; a power of two long
 	key   []uint64
 	mass  []float64
 	high  []float64 // smoothed
@@ -25,6 +23,16 @@ type hills struct {
 	visit []int32 // when divide came to a node
 	peak  []int32 // union-find parent by node, -1 while not yet visited
 	near  []int32 // by entry: the nearest node
+	// next are the nodes around each hashed one, looked up in the order in
+	// which they were made, that is in places side by side.
+	next [][8]int32
+}
+
+// slot holds a node of the hashed grid, by its key; node is one more than its
+// number, 0 in a free slot.
+type slot struct {
+	key  uint64
+	node int32
 }
 
 // packHeight makes numbers that ascend as heights fall and then as nodes rise.
@@ -60,110 +68,6 @@ func sortPacked(order, spare []uint64) {
 		from, to = to, from
 	}
 	copy(order, from) // an odd number of passes ends in spare
-}
-
-func nodeKey(col, row int32) uint64 { return uint64(uint32(col))<<32 | uint64(uint32(row)) }
-
-func (h *hills) reset(side float64, entries int) {
-	h.side = side
-	h.width = 0
-	h.key, h.mass = h.key[:0], h.mass[:0]
-	h.near = resize(h.near, entries)
-	// Small at first, so that clearing it costs a small belief nothing.
-	h.slot = resize(h.slot, 256)
-	clear(h.slot)
-}
-
-// lay makes the grid a plain array that spans the entries with two nodes to
-// spare, if that is at most four times as many nodes as entries and 1024.
-func (h *hills) lay(east, north []float64) {
-	box := geo.EmptyBox()
-	for i := range east {
-		box = box.Extend(geo.Point{E: east[i], N: north[i]})
-	}
-	col0, row0 := math.Floor(box.Min.E/h.side)-2, math.Floor(box.Min.N/h.side)-2
-	cols, rows := math.Floor(box.Max.E/h.side)+4-col0, math.Floor(box.Max.N/h.side)+4-row0
-	if cols*rows > float64(4*len(east)+1024) {
-		return
-	}
-	h.col0, h.row0, h.width = int32(col0), int32(row0), int32(cols)
-	h.mass = resize(h.mass, int(cols*rows))
-	clear(h.mass)
-}
-
-// place returns the node at a column and row, making it if need be.
-func (h *hills) place(col, row int32) int32 {
-	if h.width > 0 {
-		return (row-h.row0)*h.width + col - h.col0
-	}
-	return h.node(nodeKey(col, row))
-}
-
-// around fills the nodes around one: -1 where there is none. A plain array has
-// an empty rim; a node of it has no neighbours beyond.
-func (h *hills) around(dst *[8]int32, n int32) {
-	if w := h.width; w > 0 {
-		*dst = [8]int32{n - w - 1, n - w, n - w + 1, n - 1, n + 1, n + w - 1, n + w, n + w + 1}
-		return
-	}
-	col, row := int32(h.key[n]>>32), int32(uint32(h.key[n]))
-	i := 0
-	for dy := int32(-1); dy <= 1; dy++ {
-		for dx := int32(-1); dx <= 1; dx++ {
-			if dx != 0 || dy != 0 {
-				dst[i] = h.find(nodeKey(col+dx, row+dy))
-				i++
-			}
-		}
-	}
-}
-
-func hashOf(key uint64, mask int) int {
-	key *= 0x9e3779b97f4a7c15 // 2^64 over the golden ratio
-	return int(key>>32) & mask
-}
-
-// find returns the node of a key, -1 if there is none.
-func (h *hills) find(key uint64) int32 {
-	mask := len(h.slot) - 1
-	for i := hashOf(key, mask); ; i = (i + 1) & mask {
-		n := h.slot[i] - 1
-		if n < 0 || h.key[n] == key {
-			return n
-		}
-	}
-}
-
-// node returns the node of a key, making it if need be.
-func (h *hills) node(key uint64) int32 {
-	mask := len(h.slot) - 1
-	i := hashOf(key, mask)
-	for ; h.slot[i] != 0; i = (i + 1) & mask {
-		if n := h.slot[i] - 1; h.key[n] == key {
-			return n
-		}
-	}
-	n := int32(len(h.key))
-	h.key = append(h.key, key)
-	h.mass = append(h.mass, 0)
-	h.slot[i] = n + 1
-	if 2*len(h.key) > len(h.slot) {
-		h.grow()
-	}
-	return n
-}
-
-func (h *hills) grow() {
-	h.slot = resize(h.slot, 4*len(h.slot))
-	clear(h.slot)
-	mask := len(h.slot) - 1
-	for n, key := range h.key {
-		i := hashOf(key, mask)
-		for h.slot[i] != 0 {
-			i = (i + 1) & mask
-		}
-		h.slot[i] = int32(n) + 1
-	}
 }
 
 // pour adds an entry's mass to the four nodes around it, bilinearly, so that
@@ -260,14 +164,15 @@ func (h *hills) divide(prominence float64) {
 	}
 	h.spare = resize(h.spare, len(h.order))
 	sortPacked(h.order, h.spare)
-	var next [8]int32
+	if h.width == 0 {
+		h.link()
+	}
 	for rank, packed := range h.order {
 		at := int32(uint32(packed))
 		h.visit[at] = int32(rank)
 		var roots [8]int32
 		count, best := 0, int32(-1)
-		h.around(&next, at)
-		for _, j := range next {
+		for _, j := range h.around(at) {
 			if j < 0 || h.peak[j] < 0 {
 				continue
 			}

@@ -110,7 +110,7 @@ func (in *Input) check() error {
 	return nil
 }
 
-// entry reports an entry that is no Gaussian.
+// badEntry reports an entry that is no Gaussian.
 func badEntry(i int, m, e, n float64, c Cov) error {
 	if !(m >= 0) || !geo.Finite(m, e, n, c.EE, c.EN, c.NN) {
 		return fmt.Errorf("summary: entry %d of the cloud has mass %v at (%v, %v) with covariance (%v, %v, %v); all must be finite and the mass not negative", i, m, e, n, c.EE, c.EN, c.NN)

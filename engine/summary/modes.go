@@ -27,7 +27,6 @@ const (
 
 // modeSum gathers one mode.
 type modeSum struct {
-	peak     int32 // node of hills
 	mass     float64
 	e, n     float64
 	cov      Cov
@@ -113,7 +112,7 @@ func (s *Summarizer) gather() {
 			root = h.root(node)
 		}
 		if rank[root] == 0 {
-			s.modes = append(s.modes, modeSum{peak: root, position: len(s.modes)})
+			s.modes = append(s.modes, modeSum{position: len(s.modes)})
 			rank[root] = int32(len(s.modes))
 		}
 		k := rank[root] - 1

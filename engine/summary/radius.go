@@ -110,11 +110,7 @@ func (s *Summarizer) bracket(target float64) (low, high float64) {
 
 // radius returns the smallest radius, to radiusStep above it, outside which
 // lies at most target of the mass. rms is the root mean square distance from
-// the centre, which gives the first guess: ln P = -r²/rms² for a circle.
-//
-// The search keeps a bracket whose upper end satisfies the condition, and cuts
-// it by the secant of ln P over r², which is a straight line for one circular
-// Gaussian, or in the middle where that gains too little.
+// the centre.
 func (s *Summarizer) radius(target, rms float64) float64 {
 	r := s.search(target, rms)
 	if len(s.needles) > 0 {
@@ -123,6 +119,10 @@ func (s *Summarizer) radius(target, rms float64) float64 {
 	return r
 }
 
+// search keeps a bracket whose upper end satisfies the condition. It guesses by
+// the secant, over the last two radii, of ln P over r², which is a straight line
+// for one circular Gaussian: the first from P = 1 at 0 and ln P = -r²/rms². Where
+// the guess leaves the bracket, and every fourth time, it takes the middle.
 func (s *Summarizer) search(target, rms float64) float64 {
 	low, high := s.bracket(target)
 	lnTarget := kernel.Log(target)
@@ -130,43 +130,35 @@ func (s *Summarizer) search(target, rms float64) float64 {
 	if r == 0 {
 		return 0 // all mass is in one point
 	}
-	yLow, yHigh := 0.0, math.NaN() // ln P - ln target at the ends, where known
-	knowLow := false
-	for round := range 100 {
-		if !(r > low && r < high) || round%4 == 3 {
-			r = math.Sqrt(math.Max(low, 1e-3*high) * high)
+	// The last point, as r² and y = ln P - ln target: y falls through 0.
+	lastR2, lastY := 0.0, -lnTarget
+	for round := 1; round <= 100; round++ {
+		if !(r > low && r < high) || round%4 == 0 {
+			r = 0.5 * (low + high)
 			if math.IsInf(high, 1) {
 				r = 2*low + rms
 			}
 		}
+		r2 := r * r
 		y := kernel.Log(s.outside(r)) - lnTarget // -Inf if nothing is outside
+		slope := (y - lastY) / (r2 - lastR2)
 		if y <= 0 {
-			high, yHigh = r, y
-			// Close enough if the slope is at least that of the guess's law
-			// and the bracket is narrow enough for that to be so.
-			if -y < -radiusStep*lnTarget && knowLow && high < 1.2*low {
+			high = r
+			// Done if the slope here says that the root is radiusStep away:
+			// dr/r = y/(2r²·slope). It is the slope here if it was taken
+			// nearby.
+			if y >= 2*r2*slope*radiusStep && math.Abs(r2-lastR2) < 0.4*r2 {
 				return high
 			}
 		} else {
-			low, yLow, knowLow = r, y, true
+			low = r
 		}
 		if high <= low*(1+radiusStep) || high < 1e-9 {
 			return high
 		}
-		switch {
-		case knowLow && yHigh > -80:
-			l2, h2 := low*low, high*high
-			r = math.Sqrt(l2+(h2-l2)*yLow/(yLow-yHigh)) * (1 + 0.3*radiusStep)
-		case knowLow && math.IsInf(high, 1):
-			r = low * math.Min(math.Sqrt(lnTarget/(lnTarget+yLow)), 2) * (1 + 0.5*radiusStep)
-			if !(r > low) {
-				r = 2 * low
-			}
-		case yHigh > -80:
-			r = high * math.Sqrt(lnTarget/(lnTarget+yHigh)) * (1 - 0.5*radiusStep)
-		default:
-			r = 0.5 * (low + high)
-		}
+		root := r2 - y/slope
+		lastR2, lastY = r2, y
+		r = math.Sqrt(root) * (1 + 0.4*radiusStep) // NaN goes to the middle
 	}
 	return high
 }

@@ -115,8 +115,14 @@ func (s *Summarizer) load(in *Input) (mean geo.Point, err error) {
 	sum, e, no := 0.0, 0.0, 0.0
 	e0, n0 := c.East[0], c.North[0] // so that distance from the origin costs no digits
 	for i, m := range c.Mass {
-		if err := badEntry(i, m, c.East[i], c.North[i], Cov{c.VarEE[i], c.VarEN[i], c.VarNN[i]}); err != nil {
-			return mean, err
+		v := Cov{c.VarEE[i], c.VarEN[i], c.VarNN[i]}
+		// Zero times a sum is zero only if all of it is finite.
+		plain := m >= 0 && v.EE >= 0 && v.NN >= 0 && v.EN*v.EN <= v.EE*v.NN &&
+			0*(m+c.East[i]+c.North[i]+v.EE+v.EN+v.NN) == 0
+		if !plain {
+			if err := badEntry(i, m, c.East[i], c.North[i], v); err != nil {
+				return mean, err
+			}
 		}
 		sum += m
 		e += float64(m * (c.East[i] - e0))
