@@ -67,7 +67,7 @@ func (g Grid) Check() error {
 
 // Position returns the position of a column and row, which may be fractions.
 func (g Grid) Position(col, row float64) geo.LonLat {
-	return g.CRS.inverse(g.FirstX+col*g.StepX, g.FirstY+row*g.StepY)
+	return g.CRS.inverse(g.FirstX+float64(col*g.StepX), g.FirstY+float64(row*g.StepY))
 }
 
 // Middle returns the position of the grid's middle, the origin of its frame.
@@ -86,8 +86,8 @@ func (g Grid) Contains(p geo.LonLat) bool {
 func (g Grid) index(p geo.LonLat) (col, row float64) {
 	x, y := g.CRS.forward(p)
 	if g.CRS.Geographic() {
-		mid := g.FirstX + float64(g.Cols-1)/2*g.StepX
-		x = mid + geo.Deg(geo.WrapPi(geo.Rad(x-mid)))
+		mid := g.FirstX + float64(float64(g.Cols-1)/2*g.StepX)
+		x = mid + float64(geo.Deg(geo.WrapPi(geo.Rad(x-mid))))
 	}
 	return (x - g.FirstX) / g.StepX, (y - g.FirstY) / g.StepY
 }

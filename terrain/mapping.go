@@ -121,7 +121,7 @@ func power(f poly) poly {
 // at evaluates column and row at a point, and their derivatives by frame
 // metres. ok is false off the table.
 func (m *mapping) at(q geo.Point) (col, row float64, jac [4]float64, ok bool) {
-	fe, fn := (q.E-m.min.E)*m.perM, (q.N-m.min.N)*m.perM
+	fe, fn := float64((q.E-m.min.E)*m.perM), float64((q.N-m.min.N)*m.perM)
 	if !(fe >= 0 && fe <= m.limE && fn >= 0 && fn <= m.limN) {
 		return 0, 0, jac, false
 	}
@@ -148,7 +148,7 @@ func (m *mapping) errorM(frame geo.Frame, g Grid, size float64) float64 {
 			}
 			lastI = i
 			for _, uv := range [][2]float64{{0.25, 0.25}, {0.75, 0.25}, {0.25, 0.75}, {0.75, 0.75}, {0.25, 0.5}, {0.5, 0.75}} {
-				q := m.min.Add(geo.Point{E: (float64(i) + uv[0]) * size, N: (float64(j) + uv[1]) * size})
+				q := m.min.Add(geo.Point{E: float64((float64(i) + uv[0]) * size), N: float64((float64(j) + uv[1]) * size)})
 				worst = math.Max(worst, m.errorAt(frame, g, q))
 			}
 		}
@@ -166,6 +166,9 @@ func (m *mapping) errorAt(frame geo.Frame, g Grid, q geo.Point) float64 {
 	}
 	ce, re := g.index(frame.Inverse(q))
 	dc, dr := c-ce, r-re
-	det := jac[0]*jac[3] - jac[1]*jac[2]
-	return geo.Point{E: (jac[3]*dc - jac[1]*dr) / det, N: (jac[0]*dr - jac[2]*dc) / det}.Norm()
+	det := float64(jac[0]*jac[3]) - float64(jac[1]*jac[2])
+	return geo.Point{
+		E: (float64(jac[3]*dc) - float64(jac[1]*dr)) / det,
+		N: (float64(jac[0]*dr) - float64(jac[2]*dc)) / det,
+	}.Norm()
 }

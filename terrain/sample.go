@@ -30,7 +30,7 @@ func (r *Raster) Sample(dst geo.Heights, eastM, northM []float64) {
 	variance := r.meta.SigmaM * r.meta.SigmaM
 	slopes := dst.SlopeE != nil || dst.SlopeN != nil
 	for k, e := range eastM {
-		fe, fn := (e-m.min.E)*m.perM, (northM[k]-m.min.N)*m.perM
+		fe, fn := float64((e-m.min.E)*m.perM), float64((northM[k]-m.min.N)*m.perM)
 		var h, se, sn float64
 		known := false
 		if fe >= 0 && fe <= m.limE && fn >= 0 && fn <= m.limN {

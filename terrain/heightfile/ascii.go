@@ -98,7 +98,7 @@ func readASCII(r io.ReaderAt, size int64, _ string, opt Options) (*raw, error) {
 		y = head["yllcorner"] + dy/2
 	}
 	f := &raw{values: make([]float32, cols*rows)}
-	f.grid = terrain.Grid{Cols: cols, Rows: rows, FirstX: x, FirstY: y + float64(rows-1)*dy, StepX: dx, StepY: -dy}
+	f.grid = terrain.Grid{Cols: cols, Rows: rows, FirstX: x, FirstY: y + float64(float64(rows-1)*dy), StepX: dx, StepY: -dy}
 	nodata := head["nodata_value"]
 	word := first
 	for i := range f.values {

@@ -65,7 +65,7 @@ func readTIFF(r io.ReaderAt, size int64, _ string, opt Options) (*raw, error) {
 	}
 	if scale != 1 || offset != 0 {
 		for i, v := range f.values {
-			f.values[i] = float32(float64(v)*scale + offset)
+			f.values[i] = float32(float64(float64(v)*scale) + offset)
 		}
 	}
 	if flip {
@@ -109,7 +109,7 @@ func (t *tiff) georeference(f *raw, l *layout) (flip bool, err error) {
 			return false, fmt.Errorf("tag %d: several tie points are not supported: lay the grid straight with gdalwarp", tagTiepoint)
 		}
 		dx, dy = scale[0], -scale[1]
-		x, y = tie[3]-tie[0]*dx, tie[4]-tie[1]*dy
+		x, y = tie[3]-float64(tie[0]*dx), tie[4]-float64(tie[1]*dy)
 	default:
 		return false, fmt.Errorf("it does not say where it lies (tags %d with %d, or %d): georeference it, for example with gdal_translate -a_ullr", tagPixelScale, tagTiepoint, tagTransform)
 	}
@@ -124,7 +124,7 @@ func (t *tiff) georeference(f *raw, l *layout) (flip bool, err error) {
 		return false, fmt.Errorf("tags %d, %d: steps of %v, %v between columns and rows: columns must go east", tagPixelScale, tagTransform, dx, dy)
 	}
 	if flip = dy > 0; flip {
-		y += dy * float64(l.rows-1)
+		y += float64(dy * float64(l.rows-1))
 		dy = -dy
 	}
 	g := terrain.Grid{CRS: f.grid.CRS, Cols: l.cols, Rows: l.rows, FirstX: x, FirstY: y, StepX: dx, StepY: dy}

@@ -354,6 +354,6 @@ func (v *ncVar) unpack() func(float64) float64 {
 		if slices.Contains(voids, x) || !(x >= lo && x <= hi) {
 			return nan
 		}
-		return x*scale + offset
+		return float64(x*scale) + offset
 	}
 }
