@@ -1,0 +1,85 @@
+package server
+
+import (
+	"fmt"
+	"testing"
+
+	"google.golang.org/grpc/codes"
+	"google.golang.org/protobuf/proto"
+
+	"leadline/engine/client"
+	"leadline/engine/geo"
+	"leadline/engine/session"
+	"leadline/engine/summary"
+	"leadline/engine/wire"
+	leadlinev1 "leadline/proto/leadline/v1"
+)
+
+// asked is a tally that answers questions from what it is asked.
+type asked struct{ Session }
+
+var _ Asker = asked{}
+
+func (asked) Region(f float64) (*summary.Region, error) {
+	if f == 0.5 {
+		return nil, fmt.Errorf("not today")
+	}
+	return &summary.Region{
+		Level: f, Holds: f + 0.01, AreaM2: 1000 * f, PixelM: 3,
+		Polygons: [][][]geo.LonLat{{{middle, geo.FromDegrees(6, 53), geo.FromDegrees(6, 54), middle}}},
+	}, nil
+}
+
+func (asked) Inside(polygon [][]geo.LonLat) (float64, error) { return polygon[0][1].Lon, nil }
+
+func (asked) Protection(risk float64) (summary.Protection, error) {
+	return summary.Protection{Risk: risk, Bounded: risk > 1e-6, RadiusM: 1 / risk, Reason: "so sure of itself"}, nil
+}
+
+// TestQuestions proves that what a question asks reaches the session and comes
+// back.
+func TestQuestions(t *testing.T) {
+	_, conn := serve(t, Config{NewSession: func(c session.Config) (Session, error) {
+		s, err := newTally(c)
+		return asked{s}, err
+	}})
+	evs := voyage(11, 5)
+	if _, err := fed(limited(t), conn, client.Drive{Header: header("v")}, evs); err != nil {
+		t.Fatal(err)
+	}
+	corner, risk := geo.FromDegrees(0.25, 53), 1e-5
+	r, err := leadlinev1.NewPositionServiceClient(conn).Where(limited(t), &leadlinev1.WhereRequest{
+		Vehicle: "v", RegionFractions: []float64{0.6, 0.9}, IntegrityRisk: proto.Float64(risk),
+		Area: wire.FromPolygon([][]geo.LonLat{{middle, corner, geo.FromDegrees(5, 54)}}),
+	})
+	if err != nil {
+		t.Fatal(err)
+	}
+	p := r.GetPosterior()
+	if len(p.GetRegions()) != 2 || p.GetRegions()[1].GetFraction() != 0.9 || p.GetRegions()[0].GetProbability() != 0.61 ||
+		p.GetRegions()[1].GetAreaM2() != 900 || p.GetRegions()[0].GetPixelM() != 3 {
+		t.Errorf("regions: %v", p.GetRegions())
+	}
+	rings, err := wire.Polygon(p.GetRegions()[0].GetPolygons()[0])
+	if err != nil || len(rings) != 1 || len(rings[0]) != 4 || rings[0][3] != middle {
+		t.Errorf("polygon: %v, %v", rings, err)
+	}
+	if p.GetAreaProbability() != corner.Lon {
+		t.Errorf("probability of the area: %v, want %v", p.GetAreaProbability(), corner.Lon)
+	}
+	if p.GetProtection().GetRisk() != risk || p.GetProtection().GetRadiusM() != 1/risk {
+		t.Errorf("protection: %v", p.GetProtection())
+	}
+	if r.GetPosteriorSha256() != tallied(evs) || !r.GetEnded() {
+		t.Errorf("answer: %v", r)
+	}
+	r, err = leadlinev1.NewPositionServiceClient(conn).Where(limited(t), &leadlinev1.WhereRequest{Vehicle: "v", IntegrityRisk: proto.Float64(1e-9)})
+	if err != nil || r.GetPosterior().Protection.RadiusM != nil || r.GetPosterior().GetProtection().GetUnboundedReason() == "" {
+		t.Errorf("an unbounded radius: %v, %v", r.GetPosterior().GetProtection(), err)
+	}
+	if r.GetPosterior().AreaProbability != nil || r.GetPosterior().Regions != nil {
+		t.Errorf("what was not asked: %v", r)
+	}
+	_, err = leadlinev1.NewPositionServiceClient(conn).Where(limited(t), &leadlinev1.WhereRequest{Vehicle: "v", RegionFractions: []float64{0.5}})
+	wantStatus(t, "an answer that fails", err, codes.InvalidArgument, "region fraction 0.5: not today")
+}
