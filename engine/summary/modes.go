@@ -16,9 +16,8 @@ import (
 // from about 0.7 alert limits on: those closer make no difference that
 // anybody asked about.
 //
-// The cells' width does not enter, unless an entry (cell or Gaussian) of a
-// typical width, sqrt(12) of its sigma, is wider than the side; the side is
-// then that width. The directions of a road do not enter at all: they lie in
+// The cells' width does not enter, unless cells, or the typical Gaussian at
+// sqrt(12) of its sigma, are wider than the side; the side is then that width. The directions of a road do not enter at all: they lie in
 // one place and are one mode.
 const (
 	sidesPerLimit = 4
@@ -38,7 +37,7 @@ type modeSum struct {
 // findModes fills the modes and returns the mass of the heaviest and how many
 // hold at least ambiguousFrom.
 func (s *Summarizer) findModes(dst *Posterior, in *Input) (best float64, heavy int) {
-	side := math.Max(s.opt.AlertLimitM/sidesPerLimit, math.Sqrt(12)*s.typicalM)
+	side := math.Max(s.opt.AlertLimitM/sidesPerLimit, s.typicalM)
 	// The grid must number its columns in 30 bits; no map is so large.
 	side = math.Max(side, s.extent()/(1<<30))
 	h := &s.hills
@@ -68,12 +67,14 @@ func (s *Summarizer) findModes(dst *Posterior, in *Input) (best float64, heavy i
 	s.modeSigmaM = math.Inf(1)
 	for i := range listed {
 		m := &s.modes[i]
+		m.cov.EE -= s.square.EE
+		m.cov.NN -= s.square.NN
 		at := geo.Point{E: m.e, N: m.n}
 		dst.Modes[i] = Mode{
 			Mass: m.mass, MeanFrame: at, Mean: s.frame.Inverse(at), Cov: s.trueCov(at, m.cov),
 			Charts: m.chart, ChartCount: m.charts,
 		}
-		if _, minor := m.cov.Axes(); m.mass >= ambiguousFrom {
+		if _, minor := m.cov.Axes(); minor > 0 && m.mass >= ambiguousFrom {
 			s.modeSigmaM = math.Min(s.modeSigmaM, minor)
 		}
 	}

@@ -234,3 +234,41 @@ func TestEdgeBound(t *testing.T) {
 		t.Errorf("edges sum to %v", sum)
 	}
 }
+
+// TestFineLattice proves that a lattice whose cloud gives its cells no variance
+// of their own (its masses have the belief's) is summarized like any other: the
+// covariance is that of the masses, radii are not cut off between cells, a
+// spacing beyond the alert limit does not make every cell a mode.
+func TestFineLattice(t *testing.T) {
+	for _, sigma := range []float64{5, 100} {
+		h := 0.4 * sigma
+		in := latticeInput(45, h, sigma, geo.Point{E: 300, N: -800})
+		clear(in.Cloud.VarEE)
+		clear(in.Cloud.VarNN)
+		s, p := summarize(t, Options{}, in)
+		if p.ModeCount != 1 {
+			t.Errorf("sigma %v: %d modes", sigma, p.ModeCount)
+		}
+		// A Gaussian sampled at 0.4 sigma has its moments to 2·exp(-2π²/0.4²).
+		for _, v := range []float64{p.CovFrame.EE, p.CovFrame.NN, p.Modes[0].Cov.EE, p.Modes[0].Cov.NN} {
+			if math.Abs(v/(sigma*sigma)-1) > 1e-3 { // the scale, 2·2e-4 at most
+				t.Errorf("sigma %v: variance %v", sigma, v)
+			}
+		}
+		if want := math.Log(2*math.Pi*math.E) + 2*math.Log(sigma); math.Abs(p.EntropyNats-want) > 1e-6 {
+			t.Errorf("sigma %v: entropy %v, want %v", sigma, p.EntropyNats, want)
+		}
+		// The squares add h²/12 = 0.0133 sigma² to the variance: 0.7 % of
+		// radius; the search and the excesses add 0.4 %, the cells' ripple the rest.
+		for _, r := range []struct{ got, want float64 }{
+			{p.Radius50M, 1.17741}, {p.Radius95M, 2.44775}, {p.Radius99M, 3.03485}, {p.Protection.RadiusM, 5.678},
+		} {
+			if q := r.got / (r.want * sigma); q < 0.997 || q > 1.02 {
+				t.Errorf("sigma %v: radius %v, want %v", sigma, r.got, r.want*sigma)
+			}
+		}
+		if reg, err := s.Region(0.95); err != nil || len(reg.Polygons) != 1 || reg.AreaM2 > 1.15*math.Pi*5.991*sigma*sigma {
+			t.Errorf("sigma %v: region %+v, %v", sigma, reg, err)
+		}
+	}
+}

@@ -76,7 +76,8 @@ func (s *Summarizer) moments(in *Input, q, k int, angular bool) (mean, sigma flo
 //
 //	H = Σ m·(-ln m + h),  h = min(ln size, ½ ln((2πe)^d·det)),
 //
-// where det is the variance (or determinant) of what the cell holds. Both parts
+// where det is the variance (or determinant) of what the cell holds; cells of a
+// lattice without Gaussians are taken as filled. Both parts
 // of h bound the entropy within the cell; the first is met by a cell that is
 // filled evenly, the second by a Gaussian much narrower than it. So H does not
 // depend on the width of the cells, except by some 0.15 nat where they are about
@@ -107,8 +108,11 @@ func (s *Summarizer) entropy(in *Input) float64 {
 			} else {
 				size2 = b.Lattice.SpacingM * b.Lattice.SpacingM
 				size2 *= size2
-				v := s.cellCov(i, j, m)
-				det = twoPiE * twoPiE * (float64(v.EE*v.NN) - float64(v.EN*v.EN))
+				det = math.Inf(1)
+				if len(b.Quantities) > 0 {
+					v := s.cellCov(i, j, m)
+					det = twoPiE * twoPiE * (float64(v.EE*v.NN) - float64(v.EN*v.EN))
+				}
 			}
 			if v := math.Max(math.Min(size2, det), 1e-24); v != last {
 				last, lastLog = v, 0.5*kernel.Log(v)

@@ -23,7 +23,8 @@ type Summarizer struct {
 	dim               int
 	east, north, mass []float64
 	covs              []Cov   // with the lateral spread
-	typicalM          float64 // sigma of a typical entry
+	square            Cov     // of which, on a lattice, not the belief's own
+	typicalM          float64 // width of a typical entry
 	grainM            float64 // below which the density has no detail
 	spread            Cov     // around the mean
 	modeSigmaM        float64 // sigma of the tightest heavy mode
@@ -140,16 +141,17 @@ func (s *Summarizer) load(in *Input) (mean geo.Point, err error) {
 	s.mass, s.covs = resize(s.mass, n), resize(s.covs, n)
 	mean = geo.Point{E: e0 + e/sum, N: n0 + no/sum}
 	lateral := s.opt.LateralSigmaM * s.opt.LateralSigmaM
-	perAxis := 1 / float64(s.dim)
 	var cov Cov
 	typical := 0.0
 	for i, m := range c.Mass {
 		m /= sum
 		s.mass[i] = m
 		v := Cov{c.VarEE[i], c.VarEN[i], c.VarNN[i]}
-		typical += float64(m * math.Sqrt((v.EE+v.NN)*perAxis))
 		if s.dim == 1 {
+			typical += float64(m * math.Max(in.Lines.WidthM[c.Chart[i]], sqrt12*math.Sqrt(v.EE+v.NN)))
 			v = across(v, lateral)
+		} else {
+			typical += float64(m * sqrt12 * math.Sqrt(0.5*(v.EE+v.NN)))
 		}
 		s.covs[i] = v
 		de, dn := c.East[i]-mean.E, c.North[i]-mean.N
@@ -158,15 +160,34 @@ func (s *Summarizer) load(in *Input) (mean geo.Point, err error) {
 		cov.NN += float64(m * (v.NN + float64(dn*dn)))
 	}
 	s.spread, s.typicalM = cov, typical
+	s.square = Cov{}
 	switch {
 	case s.dim == 1:
 		s.grainM = 0.5 * s.opt.LateralSigmaM
 	case in.Belief.K() > 0:
-		s.grainM = 0.5 * typical
+		s.typicalM = math.Max(typical, in.Belief.Lattice.SpacingM)
+		s.grainM = 0.5 * typical / sqrt12
 	default:
-		s.grainM = in.Belief.Lattice.SpacingM
+		s.fillSquares(in.Belief.Lattice.SpacingM)
 	}
 	return mean, nil
+}
+
+const sqrt12 = 3.4641016151377544
+
+// fillSquares makes the points of a lattice as wide as its cells: a variance of
+// at least h²/12 an axis. The moments do without where the masses' own variance
+// is the belief's (the cloud then says 0), but a radius or a region of points
+// would end between two of them.
+func (s *Summarizer) fillSquares(h float64) {
+	s.typicalM = math.Max(s.typicalM, h)
+	s.grainM = h
+	v := &s.covs[0] // all are alike
+	s.square = Cov{EE: math.Max(h*h/12-v.EE, 0), NN: math.Max(h*h/12-v.NN, 0)}
+	for i := range s.covs {
+		s.covs[i].EE += s.square.EE
+		s.covs[i].NN += s.square.NN
+	}
 }
 
 // across adds the lateral variance to a covariance along a line. That is along
