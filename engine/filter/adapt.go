@@ -14,8 +14,10 @@ import (
 //
 // For modes far apart J is the mean over the modes, so that the scale is that
 // of the modes and not of the distance between them.
-func (b *Belief) ScaleM() float64 {
-	t := &b.Tiles
+func (b *Belief) ScaleM() float64 { return b.Lattice.SpacingM * b.Tiles.scale() }
+
+// scale is ScaleM in cells. The masses must sum to 1.
+func (t *Tiles) scale() float64 {
 	var je, jn float64
 	for i, at := range t.At {
 		tile := t.tile(i)
@@ -46,7 +48,7 @@ func (b *Belief) ScaleM() float64 {
 			}
 		}
 	}
-	return b.Lattice.SpacingM / (2 * math.Sqrt(math.Max(je, jn)))
+	return 1 / (2 * math.Sqrt(math.Max(je, jn)))
 }
 
 // Spacing is at most fineScale of the belief's scale where the budget allows;
@@ -97,21 +99,42 @@ func (b *Belief) Cells() int {
 	return b.occupiedCells()
 }
 
-// refine doubles the resolution: each cell's mass goes to the nine nearest
-// points of the finer lattice with weights 1/4, 1/2, 1/4 along each axis,
-// which keeps the mean and adds h²/8 of variance an axis (h the old spacing).
+// refineTaps are the weights at -3 … 3 finer cells of interpolation by cubics:
+// a point keeps half its mass and those between two get -1/32, 9/32, 9/32,
+// -1/32 of their neighbours'. Mean and variance are kept.
+//
+// Source: the four-point scheme of Deslauriers & Dubuc, Constr. Approx. 5
+// (1989).
+var refineTaps = [7]float64{-1. / 32, 0, 9. / 32, 1. / 2, 9. / 32, 0, -1. / 32}
+
+// refine doubles the resolution. Where a belief has an edge, interpolation
+// would go below zero: such cells are empty and the others share their mass;
+// what that does to the mean and the variance is made up for as by coarsen.
 func (b *Belief) refine(ts *tileSpace) {
 	before := b.latticeMoments()
-	h := b.Lattice.SpacingM
-	src := b.Tiles
+	dst := b.interpolate(ts)
+	kept := 0.0
+	for _, v := range dst.Mass {
+		kept += v
+	}
+	scale := before.mass / kept
+	for i := range dst.Mass {
+		dst.Mass[i] *= scale
+	}
+	b.swap(ts, Lattice{b.Lattice.Origin, b.Lattice.SpacingM / 2}, before)
+}
+
+// interpolate writes the masses over a lattice of half the spacing into
+// ts.spare, with 0 for what would be below.
+func (b *Belief) interpolate(ts *tileSpace) *Tiles {
+	src := &b.Tiles
 	dst := &ts.spare
-	// Finer tiles: each old one becomes four, and its border leans one cell
-	// over on every side.
+	// Finer tiles: each old one becomes four, and its border leans three
+	// cells over on every side.
 	ts.cover(src.At, func(t TileAt) (lo, hi TileAt) {
 		c, r := 2*t.Col*TileSide, 2*t.Row*TileSide
-		return TileAt{c - 1, r - 1}, TileAt{c + 2*TileSide - 1, r + 2*TileSide - 1}
+		return TileAt{c - 3, r - 3}, TileAt{c + 2*TileSide + 1, r + 2*TileSide + 1}
 	})
-	weight := [3]float64{0.25, 0.5, 0.25}
 	for i, at := range src.At {
 		for x, v := range src.tile(i) {
 			if v == 0 {
@@ -119,14 +142,23 @@ func (b *Belief) refine(ts *tileSpace) {
 			}
 			col := 2 * (at.Col*TileSide + int32(x%TileSide))
 			row := 2 * (at.Row*TileSide + int32(x/TileSide))
-			for dr := range int32(3) {
-				for dc := range int32(3) {
-					dst.add(ts, col+dc-1, row+dr-1, float64(v*float64(weight[dr]*weight[dc])))
+			for dr, wr := range refineTaps {
+				if wr == 0 {
+					continue
+				}
+				vr := float64(v * wr)
+				for dc, wc := range refineTaps {
+					if wc != 0 {
+						dst.add(ts, col+int32(dc)-3, row+int32(dr)-3, float64(vr*wc))
+					}
 				}
 			}
 		}
 	}
-	b.swap(ts, Lattice{b.Lattice.Origin, h / 2}, before)
+	for i, v := range dst.Mass {
+		dst.Mass[i] = math.Max(v, 0)
+	}
+	return dst
 }
 
 // coarsen halves the resolution: four cells become one at their middle. The

@@ -104,7 +104,7 @@ func meanAndError(xs []float64) (mean, standardError float64) {
 // ANEES 0.984 ± 0.016, with cells of 1 m 4.642 and 0.957.
 func TestGrowthModel(t *testing.T) {
 	const seed = 2002
-	runs, long := 60, os.Getenv("LEADLINE_LONG") != ""
+	runs, long := 40, os.Getenv("LEADLINE_LONG") != ""
 	if long {
 		runs = 8000
 	}

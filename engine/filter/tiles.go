@@ -2,11 +2,9 @@ package filter
 
 import (
 	"cmp"
-	"math"
 	"slices"
 
 	"leadline/engine/geo"
-	"leadline/engine/kernel"
 )
 
 const tileCells = TileSide * TileSide
@@ -193,136 +191,30 @@ func occupied(tile []float64) (lo, hi TileAt, any bool) {
 // dropTiles zeroes cells below cellFloor, removes empty tiles and counts what
 // goes.
 func (b *Belief) dropTiles() {
+	for i, v := range b.Tiles.Mass {
+		if v < cellFloor && v > 0 {
+			b.Pruned += v
+			b.Tiles.Mass[i] = 0
+		}
+	}
+	b.dropEmptyTiles()
+}
+
+// dropEmptyTiles removes tiles without mass.
+func (b *Belief) dropEmptyTiles() {
 	t := &b.Tiles
 	j := 0
 	for i := range t.At {
-		tile := t.tile(i)
-		any := false
-		for x, v := range tile {
-			if v >= cellFloor {
-				any = true
-			} else if v > 0 {
-				b.Pruned += v
-				tile[x] = 0
-			}
-		}
-		if !any {
+		if _, _, any := occupied(t.tile(i)); !any {
 			continue
 		}
 		if i != j {
 			t.At[j] = t.At[i]
-			copy(t.tile(j), tile)
+			copy(t.tile(j), t.tile(i))
 		}
 		j++
 	}
 	t.At, t.Mass = t.At[:j], t.Mass[:j*tileCells]
-}
-
-// updateTiles weighs the lattice's cells.
-func (b *Belief) updateTiles(space PlaneSpace, l any, w *Workspace) (float64, error) {
-	t := &b.Tiles
-	w.logs = resize(w.logs, len(t.Mass))
-	clear(w.logs)
-	h := b.Lattice.SpacingM
-	within := h * h / 12
-	var nw noiseWork
-	lin, linear := l.(LinearLikelihood)
-	like, plain := l.(Likelihood)
-	wants := WantPosition
-	switch {
-	case linear:
-		noise := lin.Noise()
-		nw = newNoiseWork(&noise, lin.Rows())
-		wants |= lin.Wants()
-	case plain:
-		wants |= like.Wants()
-	default:
-		panic("filter: not a likelihood")
-	}
-	for i := range t.At {
-		logs := w.logs[i*tileCells : (i+1)*tileCells]
-		w.at.Resize(wants, 2, tileCells)
-		b.Lattice.points(&w.at, t.At[i])
-		space.Sample(&w.at)
-		if !linear {
-			like.LogLikelihood(logs, &w.at)
-			continue
-		}
-		m := lin.Rows()
-		w.terms.resize(tileCells, m, 2)
-		lin.Linearize(&w.terms, &w.at, nil, nil)
-		for x, mass := range t.tile(i) {
-			if mass == 0 {
-				continue
-			}
-			logs[x] = nw.density(&w.terms, x, within)
-		}
-	}
-	logEvidence, err := weigh(t.Mass, w.logs)
-	if err != nil {
-		return logEvidence, err
-	}
-	// The excess variance was that of the belief before; the sharper one after
-	// has less of it, by (variance after / before)², and that is not kept.
-	t.Surplus = [3]float64{}
-	before := b.Pruned
-	b.dropTiles()
-	if lost := b.Pruned - before; lost > 0 {
-		scale := 1 / (1 - lost)
-		for i := range t.Mass {
-			t.Mass[i] *= scale
-		}
-	}
-	return logEvidence, nil
-}
-
-// points writes the centres of a tile's cells.
-func (l Lattice) points(at *Columns, t TileAt) {
-	i := 0
-	for r := range int32(TileSide) {
-		n := l.Centre(0, t.Row*TileSide+r).N
-		for c := range int32(TileSide) {
-			at.East[i] = l.Centre(t.Col*TileSide+c, 0).E
-			at.North[i] = n
-			i++
-		}
-	}
-}
-
-// density returns the log likelihood at a lattice cell whose position has the
-// variance within along each axis.
-func (w *noiseWork) density(t *Terms, i int, within float64) float64 {
-	if flat := t.Flat[i]; flat == flat {
-		return float64(w.power * flat)
-	}
-	m := w.m
-	row := t.Row[i*m*2 : (i+1)*m*2]
-	var r [2]float64
-	copy(r[:], t.Residual[i*m:(i+1)*m])
-	p := sym2{a: float64(within * (float64(row[0]*row[0]) + float64(row[1]*row[1])))}
-	if m == 2 {
-		p.b = float64(within * (float64(row[0]*row[2]) + float64(row[1]*row[3])))
-		p.c = float64(within * (float64(row[2]*row[2]) + float64(row[3]*row[3])))
-	}
-	if len(w.parts) == 1 && math.IsInf(w.logFlat, -1) {
-		log, _ := w.part(0, p, r, t.Extra[i], w.power)
-		return float64(w.power*w.logW[0]) + log
-	}
-	var logs [maxParts]float64
-	most := w.logFlat
-	for c := range w.parts {
-		l, _ := w.part(c, p, r, t.Extra[i], w.power)
-		logs[c] = w.logW[c] + l/w.power
-		most = math.Max(most, logs[c])
-	}
-	if math.IsInf(most, -1) {
-		return most
-	}
-	sum := kernel.Exp(w.logFlat - most)
-	for c := range w.parts {
-		sum += kernel.Exp(logs[c] - most)
-	}
-	return float64(w.power * (most + kernel.Log(sum)))
 }
 
 func abs32(a int32) int32 { return max(a, -a) }
