@@ -126,11 +126,10 @@ func slowVariance(m *network.Map, chart int32, s, r float64) float64 {
 // unwrapping along the path and wrapping at its end are different things, so
 // such places, at dead ends, are left out.
 func TestHeadingVarianceSlow(t *testing.T) {
-	m := build(t, cross(), network.Options{})
 	g := cross()
 	g.Roads = append(g.Roads, road(1, 5, at(100, 0), at(103, 4), at(108, 4), at(108, 30)), road(5, 6, at(108, 30), at(109, 31)),
 		road(6, 7, at(109, 31), at(140, 31)), oneWay(road(6, 8, at(109, 31), at(109, 60))))
-	m = build(t, g, network.Options{})
+	m := build(t, g, network.Options{})
 	const seed = 3
 	rng := rand.New(rand.NewPCG(seed, 0))
 	checked := 0

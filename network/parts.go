@@ -68,8 +68,10 @@ type Stretch struct {
 // Within returns the stretches of all charts inside a polygon in the frame, by
 // chart and then along it. The polygon is one or more rings, the last point of
 // each joined to its first; a point is inside if it is inside an odd number of
-// them, so holes are rings too. Fewer than three points hold nothing.
+// them, so holes are rings too. A ring of fewer than three points holds
+// nothing.
 func (m *Map) Within(rings ...[]geo.Point) []Stretch {
+	rings = slices.DeleteFunc(slices.Clone(rings), func(r []geo.Point) bool { return len(r) < 3 })
 	box := geo.EmptyBox()
 	for _, r := range rings {
 		for _, p := range r {
