@@ -169,7 +169,7 @@ func TestBadLines(t *testing.T) {
 		if strings.Contains(err.Error(), "\n") {
 			t.Errorf("more than one line: %q", err)
 		}
-		if _, again := r.Read(); again != err {
+		if _, again := r.Read(); !errors.Is(again, err) {
 			t.Errorf("the error does not stay: %v", again)
 		}
 	}

@@ -54,7 +54,7 @@ func (r *Reader) Read() (*Record, error) {
 	}
 	rec, err := r.read()
 	if err != nil {
-		if err != io.EOF {
+		if !errors.Is(err, io.EOF) {
 			err = &Error{r.name, max(r.line, 1), err}
 		}
 		r.err = err
@@ -66,13 +66,13 @@ func (r *Reader) Read() (*Record, error) {
 func (r *Reader) read() (*Record, error) {
 	for {
 		line, err := r.next()
-		if err == io.EOF && len(line) == 0 {
+		if errors.Is(err, io.EOF) && len(line) == 0 {
 			if r.header == nil {
 				return nil, errors.New("no header: the file is empty; begin it with a line {\"time\":…,\"header\":{…}}")
 			}
 			return nil, io.EOF
 		}
-		if err != nil && err != io.EOF {
+		if err != nil && !errors.Is(err, io.EOF) {
 			return nil, err
 		}
 		if len(bytes.TrimSpace(line)) == 0 {
@@ -81,7 +81,7 @@ func (r *Reader) read() (*Record, error) {
 		m := &leadlinev1.DriveRecord{}
 		if bad := protojson.Unmarshal(line, m); bad != nil {
 			bad = plain(bad)
-			if err == io.EOF {
+			if errors.Is(err, io.EOF) {
 				bad = fmt.Errorf("%w (the file's last line does not end: is the file cut off?)", bad)
 			}
 			return nil, bad
@@ -102,7 +102,7 @@ func (r *Reader) next() ([]byte, error) {
 		if len(r.buf)+len(part) > MaxLine+len("\r\n") {
 			return nil, fmt.Errorf("the line is over %d bytes: a drive file has one record a line", MaxLine)
 		}
-		if err == bufio.ErrBufferFull {
+		if errors.Is(err, bufio.ErrBufferFull) {
 			r.buf = append(r.buf, part...)
 			continue
 		}
@@ -193,7 +193,7 @@ func ReadAll(rd io.Reader, name string) (*Drive, error) {
 			err = &Error{name, rec.Line, fmt.Errorf("more than %d records: split the drive", MaxRecords)}
 		}
 		switch {
-		case err == io.EOF:
+		case errors.Is(err, io.EOF):
 			return d, nil
 		case err != nil:
 			return nil, err

@@ -65,7 +65,6 @@ func New(cfg Config) (*Server, error) {
 		grpc.MaxRecvMsgSize(cfg.Limits.MessageBytes),
 		grpc.MaxHeaderListSize(16<<10),
 		grpc.MaxConcurrentStreams(uint32(cfg.Limits.Streams)),
-		grpc.SharedWriteBuffer(true),
 		grpc.WaitForHandlers(true),
 		// A half-open connection is found within 40 s; clients may look as
 		// often as every 10 s, also between streams.
