@@ -41,60 +41,6 @@ func TestDiscreteNormal(t *testing.T) {
 	}
 }
 
-// convolve applies a kernel n times to a point mass in the middle of m cells.
-func convolve(w []float64, n, m int) []float64 {
-	p, q := make([]float64, m), make([]float64, m)
-	p[m/2] = 1
-	for range n {
-		clear(q)
-		for i, v := range p {
-			for d, x := range w {
-				if i+d < m {
-					q[i+d] += v * x
-				}
-				if d > 0 && i-d >= 0 {
-					q[i-d] += v * x
-				}
-			}
-		}
-		p, q = q, p
-	}
-	return p
-}
-
-// TestTails measures the mass beyond 5.4 standard deviations (cells 14 and
-// outwards) after one step and after a hundred, both with a total variance of
-// (2.5 cells)²: the coarsest lattice that Adapt keeps. A Gaussian has 6.7e-8
-// there. Measured: 5.5e-8 in one step, 6.0e-7 in a hundred of a quarter of a
-// cell each, whose excess kurtosis is that of a walk by single cells,
-// 1/6.25. So small steps overstate the tail, by less than 1e-6.
-func TestTails(t *testing.T) {
-	const total, beyond = 6.25, 14
-	gauss := math.Erfc((beyond - 0.5) / 2.5 / math.Sqrt2)
-	for _, c := range []struct {
-		steps      int
-		low, above float64
-	}{{1, 0.5e-7, 0.6e-7}, {10, 0.5e-7, 0.6e-7}, {100, 5.5e-7, 6.5e-7}, {1000, 8e-7, 9e-7}} {
-		const m = 401
-		p := convolve(discreteNormal(nil, total/float64(c.steps)), c.steps, m)
-		tail, variance := 0.0, 0.0
-		for i, v := range p {
-			n := float64(i - m/2)
-			variance += v * n * n
-			if math.Abs(n) >= beyond {
-				tail += v
-			}
-		}
-		t.Logf("%d steps: mass beyond 5.4 sigma %.3g, of a Gaussian %.3g", c.steps, tail, gauss)
-		if math.Abs(variance-total) > 1e-11*total { // 1000 steps of 1e-15
-			t.Errorf("%d steps: variance %.15g, want %g", c.steps, variance, total)
-		}
-		if tail < c.low || tail > c.above {
-			t.Errorf("%d steps: mass beyond 5.4 sigma %g, measured before: %g to %g", c.steps, tail, c.low, c.above)
-		}
-	}
-}
-
 // TestDirections proves Q = Σ λ u uᵀ with λ ≥ 0 and short u, for anisotropies
 // up to the bound of spreadable, at any angle, the nearly rational ones and
 // those a hair off an axis included.
