@@ -120,7 +120,7 @@ func (s *Session) step(t sensor.Time, end int) *summary.Posterior {
 	st := &s.state
 	var evidence []summary.Evidence
 	weigh := func(ev sensor.Event, kind string, l any) {
-		e, err := filter.Update(st.belief, s.space, l, &s.work)
+		e, err := filter.UpdateWithin(st.belief, s.space, l, s.maxCells, &s.work)
 		if errors.Is(err, filter.ErrContradiction) {
 			e = math.Inf(-1)
 		} else {
@@ -136,11 +136,7 @@ func (s *Session) step(t sensor.Time, end int) *summary.Posterior {
 	if t > st.time {
 		travelled := s.move(t)
 		gapS = s.motion.GapS()
-		l, ok := s.motion.CrossTrack(s.space.Frame(), st.pose)
-		if !ok {
-			l, ok = sensor.RoadAlignment(st.belief.Quantities, travelled)
-		}
-		if ok {
+		if l := s.followsRoad(travelled); l != nil {
 			weigh(sensor.Event{Sensor: roadSensor}, sensor.KindTurn, l)
 		}
 	}
@@ -164,6 +160,19 @@ func (s *Session) step(t sensor.Time, end int) *summary.Posterior {
 	p := s.summarise(evidence, gapS)
 	s.snapshot()
 	return p
+}
+
+// followsRoad is what the last motion says about the road's direction; nil on
+// a plane and where it says nothing.
+func (s *Session) followsRoad(travelledM float64) filter.LinearLikelihood {
+	if s.lines == nil {
+		return nil
+	}
+	if l, ok := s.motion.CrossTrack(s.space.Frame(), s.state.pose); ok {
+		return l
+	}
+	l, _ := sensor.RoadAlignment(s.state.belief.Quantities, travelledM)
+	return l
 }
 
 // roadSensor names the comparison of the vehicle's heading with the road's in

@@ -189,5 +189,8 @@ func (s *Session) Counts() (accepted, refused uint64) { return s.accepted, s.ref
 // late event can change any more. After Flush that is all of them.
 func (s *Session) Hash() string { return s.hasher.Sum() }
 
+// CellM is the width of the belief's cells now; on lines the widest.
+func (s *Session) CellM() float64 { return s.cellM() }
+
 // ReadBelief spells out the present belief.
 func (s *Session) ReadBelief(dst *filter.Cloud) { s.state.belief.Read(dst, s.space, &s.work) }
