@@ -2,6 +2,8 @@ package server
 
 import (
 	"fmt"
+	"math"
+	"strings"
 	"testing"
 
 	"google.golang.org/grpc/codes"
@@ -82,4 +84,36 @@ func TestQuestions(t *testing.T) {
 	}
 	_, err = leadlinev1.NewPositionServiceClient(conn).Where(limited(t), &leadlinev1.WhereRequest{Vehicle: "v", RegionFractions: []float64{0.5}})
 	wantStatus(t, "an answer that fails", err, codes.InvalidArgument, "region fraction 0.5: not today")
+}
+
+// TestBadQuestions proves that each wrong question has its own answer.
+func TestBadQuestions(t *testing.T) {
+	_, conn := serve(t, Config{})
+	openRaw(t, conn, &leadlinev1.Open{Header: header("silent"), Drive: "d"})
+	if _, err := fed(limited(t), conn, client.Drive{Header: header("v")}, voyage(9, 5)); err != nil {
+		t.Fatal(err)
+	}
+	corner := wire.FromPosition(geo.FromDegrees(5, 53))
+	for _, c := range []struct {
+		req   *leadlinev1.WhereRequest
+		code  codes.Code
+		words string
+	}{
+		{&leadlinev1.WhereRequest{}, codes.InvalidArgument, "vehicle is missing"},
+		{&leadlinev1.WhereRequest{Vehicle: "ghost"}, codes.NotFound, `no vehicle "ghost" here`},
+		{&leadlinev1.WhereRequest{Vehicle: strings.Repeat("x", 1<<20)}, codes.NotFound, "no vehicle"},
+		{&leadlinev1.WhereRequest{Vehicle: "silent"}, codes.FailedPrecondition, "no posterior yet"},
+		{&leadlinev1.WhereRequest{Vehicle: "v", RegionFractions: []float64{0.5, 1}}, codes.InvalidArgument, "region fraction 1: it must be above 0 and below 1"},
+		{&leadlinev1.WhereRequest{Vehicle: "v", RegionFractions: []float64{math.NaN()}}, codes.InvalidArgument, "region fraction NaN"},
+		{&leadlinev1.WhereRequest{Vehicle: "v", RegionFractions: make([]float64, 9)}, codes.InvalidArgument, "9 region_fractions: at most 8"},
+		{&leadlinev1.WhereRequest{Vehicle: "v", IntegrityRisk: proto.Float64(0)}, codes.InvalidArgument, "integrity_risk 0"},
+		{&leadlinev1.WhereRequest{Vehicle: "v", Area: &leadlinev1.Polygon{}}, codes.InvalidArgument, "area: no ring"},
+		{&leadlinev1.WhereRequest{Vehicle: "v", Area: &leadlinev1.Polygon{Rings: []*leadlinev1.Ring{{Points: []*leadlinev1.Position{corner, corner}}}}}, codes.InvalidArgument, "rings[0] has 2 points"},
+	} {
+		_, err := leadlinev1.NewPositionServiceClient(conn).Where(limited(t), c.req)
+		wantStatus(t, fmt.Sprintf("%.100v", c.req), err, c.code, c.words)
+		if len(err.Error()) > 2000 {
+			t.Errorf("%.100v: an answer of %d bytes", c.req, len(err.Error()))
+		}
+	}
 }
