@@ -29,6 +29,11 @@ const leastShare = 500 * time.Millisecond
 // its corpus and to shrink a finding, before it counts as hanging.
 const graceTime = 2 * time.Minute
 
+// shrinking is how often an input that reaches new code, or a finding, may be
+// tried in a shorter form. By default the engine shrinks for a minute, which
+// with a share of seconds would leave no time for new inputs.
+const shrinking = "20x"
+
 type target struct {
 	pkg, dir, binary, name string
 }
@@ -139,7 +144,7 @@ func live(t target, share time.Duration, cache string) error {
 	ctx, cancel := context.WithTimeout(context.Background(), share+graceTime)
 	defer cancel()
 	cmd := exec.CommandContext(ctx, t.binary, "-test.run=^$", "-test.fuzz="+exact,
-		"-test.fuzztime="+share.String(), "-test.fuzzcachedir="+cache)
+		"-test.fuzztime="+share.String(), "-test.fuzzminimizetime="+shrinking, "-test.fuzzcachedir="+cache)
 	cmd.Dir = t.dir
 	var said bytes.Buffer
 	cmd.Stdout, cmd.Stderr = &said, &said

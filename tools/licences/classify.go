@@ -6,9 +6,12 @@ import (
 )
 
 // permitted are the licences, by SPDX name, that an Apache-2.0 program may be
-// linked with and handed on.
+// linked with and handed on. CC-BY-4.0 asks for attribution, which the page
+// gives. FTL is the FreeType licence, where a module offers the choice between
+// it and the GPL.
 var permitted = []string{
-	"Apache-2.0", "BSD-2-Clause", "BSD-3-Clause", "BSL-1.0", "CC0-1.0", "ISC", "MIT", "MPL-2.0", "Unlicense", "Zlib",
+	"Apache-2.0", "BSD-2-Clause", "BSD-3-Clause", "BSL-1.0", "CC-BY-4.0", "CC0-1.0", "FTL", "ISC", "MIT", "MPL-2.0",
+	"Unlicense", "Zlib",
 }
 
 // marks are phrases that stand in one licence's text and no other's, white
@@ -25,6 +28,8 @@ var marks = []struct{ name, phrase string }{
 	{"CC0-1.0", "cc0 1.0 universal"},
 	{"Unlicense", "this is free and unencumbered software released into the public domain"},
 	{"Zlib", "altered source versions must be plainly marked as such"},
+	{"CC-BY-4.0", "creative commons attribution 4.0 international public license"},
+	{"FTL", "your choice of exactly one of the following two licenses: * the freetype license"},
 	{"AGPL", "gnu affero general public license version 3"},
 	{"LGPL", "gnu lesser general public license"},
 	{"GPL", "gnu general public license version"},
@@ -50,8 +55,9 @@ func classify(text string) []string {
 			names = append(names, "BSD-2-Clause")
 		}
 	}
-	// The MPL's text speaks of the GNU licences without being one.
-	if slices.Contains(names, "MPL-2.0") {
+	// The MPL's text speaks of the GNU licences without being one, and of the
+	// FreeType choice the GPL is the half not taken.
+	if slices.Contains(names, "MPL-2.0") || slices.Contains(names, "FTL") {
 		names = slices.DeleteFunc(names, func(n string) bool { return strings.HasSuffix(n, "GPL") })
 	}
 	slices.Sort(names)

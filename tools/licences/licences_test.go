@@ -55,6 +55,7 @@ func TestClassify(t *testing.T) {
 		},
 		{"two texts in one file", "Apache License\n Version 2.0, January 2004 ... ISC License: Permission to use, copy, modify, and/or distribute this software for any purpose with or without fee is hereby granted", []string{"Apache-2.0", "ISC"}},
 		{"two clauses", "Redistribution and use in source and binary forms,\n with or without modification, are permitted provided", []string{"BSD-2-Clause"}},
+		{"a choice", "is subject to your choice of exactly one of\nthe following two licenses:\n  * The FreeType License, which is similar\n  * The GNU General Public License (GPL), version 2", []string{"FTL"}},
 		{"lesser", "GNU LESSER GENERAL PUBLIC LICENSE\nVersion 3", []string{"LGPL"}},
 		{"none", "All rights reserved.", nil},
 	} {
