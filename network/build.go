@@ -106,9 +106,9 @@ func (b *builder) charts() error {
 		if r.Forward && r.Backward {
 			d.Twin[b.forward[i]], d.Twin[b.backward[i]] = b.backward[i], b.forward[i]
 		}
-		if !(total <= MaxLengthM) {
-			return fmt.Errorf("%.0f km of directed edges are more than the %.0f that a map may hold: cut the region",
-				total/1000, MaxLengthM/1000)
+		if !(total <= b.opt.MaxLengthM) {
+			return fmt.Errorf("more than %.0f km of directed edges, the bound that was set: cut the region, look for stray coordinates (%s ends here), or raise the bound",
+				b.opt.MaxLengthM/1000, r.Feature)
 		}
 	}
 	if d.Charts() == 0 {

@@ -12,7 +12,7 @@ import (
 const (
 	MaxRoads    = 20_000_000
 	MaxVertices = 200_000_000
-	MaxLengthM  = 2e9 // directed, hence at most 1e9 stations and 2e9 cells of 1 m
+	MaxLengthM  = 2e9 // directed, hence some 1e9 stations and 2e9 cells of 1 m
 )
 
 // Attributes are what the source says about a road. The zero value says
@@ -63,6 +63,10 @@ type Options struct {
 	// UTurnWeight is the probability that a vehicle turns round at an ordinary
 	// junction, in [0, 1). At a dead end it always does.
 	UTurnWeight float64
+	// MaxLengthM bounds the directed length of the map in metres; 0 means 2e8,
+	// some 100 000 km of two-way road, which take up to 1 GB. It keeps a few
+	// stray coordinates from taking all memory. At most MaxLengthM.
+	MaxLengthM float64
 	// Heights is draped over the roads, in place of the heights of their
 	// points. Its frame may differ from the map's.
 	Heights geo.Field
@@ -80,6 +84,9 @@ func (o Options) withDefaults() Options {
 	if o.CellM == 0 {
 		o.CellM = 1
 	}
+	if o.MaxLengthM == 0 {
+		o.MaxLengthM = 2e8
+	}
 	if o.HeightSigmaM == 0 {
 		o.HeightSigmaM = 2
 	}
@@ -94,6 +101,9 @@ func (o Options) Validate() error {
 	}
 	if !(o.UTurnWeight >= 0 && o.UTurnWeight < 1) {
 		wrong = append(wrong, fmt.Sprintf("U-turn weight %v is not in [0, 1)", o.UTurnWeight))
+	}
+	if !(o.MaxLengthM >= 0 && o.MaxLengthM <= MaxLengthM) {
+		wrong = append(wrong, fmt.Sprintf("length bound %v m is not between 0 and %g", o.MaxLengthM, MaxLengthM))
 	}
 	if !(o.HeightSigmaM >= 0) || math.IsInf(o.HeightSigmaM, 0) {
 		wrong = append(wrong, fmt.Sprintf("height sigma %v m is not a finite number ≥ 0", o.HeightSigmaM))

@@ -135,20 +135,29 @@ func (m *Map) sampleHeading(dst *filter.Columns, chart []int32, alongM []float64
 
 func (m *Map) sampleHeight(dst *filter.Columns, chart []int32, alongM []float64) {
 	d := m.d
-	known := m.HasHeights()
-	for i, c := range chart {
-		dst.Height[i], dst.SlopeE[i], dst.SlopeN[i], dst.HeightVar[i] = math.NaN(), 0, 0, 0
-		if !known {
-			continue
+	alongM = alongM[:len(chart)]
+	if !m.HasHeights() {
+		for i := range chart {
+			dst.Height[i], dst.SlopeE[i], dst.SlopeN[i], dst.HeightVar[i] = math.NaN(), 0, 0, 0
 		}
-		first, end := d.StationStart[c], d.StationStart[c+1]-2
-		perM := m.stationsPerM[c]
-		x := float64(clampAlong(alongM[i], m.lines[0].LengthM[c]) * perM)
+		return
+	}
+	last := int32(-1)
+	var first, end int32
+	var perM, length float64
+	for i, c := range chart {
+		if c != last {
+			last = c
+			first, end = d.StationStart[c], d.StationStart[c+1]-2
+			perM, length = m.stationsPerM[c], m.lines[0].LengthM[c]
+		}
+		x := float64(clampAlong(alongM[i], length) * perM)
 		k := min(first+int32(x), end)
 		x -= float64(k - first)
 		h0, h1 := float64(d.Height[k]), float64(d.Height[k+1])
 		h := h0 + float64(x*(h1-h0))
 		if h != h {
+			dst.Height[i], dst.SlopeE[i], dst.SlopeN[i], dst.HeightVar[i] = h, 0, 0, 0
 			continue
 		}
 		grade := float64((h1 - h0) * perM)

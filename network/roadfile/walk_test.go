@@ -1,6 +1,9 @@
 package roadfile
 
 import (
+	"encoding/json"
+	"testing"
+
 	"leadline/engine/filter"
 	"leadline/network"
 )
@@ -22,4 +25,13 @@ func walk(m *network.Map) *filter.Columns {
 	p, _ := m.Ends(0)
 	m.Near(p, 10)
 	return &at
+}
+
+func jsonText(tb testing.TB, v any) string {
+	tb.Helper()
+	b, err := json.Marshal(v)
+	if err != nil {
+		tb.Fatal(err)
+	}
+	return string(b)
 }
