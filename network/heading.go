@@ -118,7 +118,7 @@ func (d *Data) appendKnots(c int32, first float64, turns []turnAt) {
 		for _, x := range [2]corner{{t.along - smoothM, by}, {t.along + smoothM, -by}} {
 			switch {
 			case x.at <= 0:
-				h -= x.slope * x.at
+				h -= float64(x.slope * x.at)
 				slope += x.slope
 			case x.at < length:
 				corners = append(corners, x)
@@ -147,12 +147,12 @@ func (d *Data) appendKnots(c int32, first float64, turns []turnAt) {
 	s := 0.0
 	knot(0, h)
 	for _, x := range corners {
-		h += slope * (x.at - s)
+		h += float64(slope * (x.at - s))
 		s = x.at
 		knot(s, h)
 		slope += x.slope
 	}
-	h += slope * (length - s)
+	h += float64(slope * (length - s))
 	if last := len(d.KnotAlong) - 1; last > int(d.KnotStart[c]) && float32(length) <= d.KnotAlong[last] {
 		d.KnotHeading[last] = float32(h)
 		return

@@ -59,7 +59,7 @@ func (b *builder) ownHeights(height, variance []float32) {
 			x := (s - d.Along[seg]) / (d.Along[seg+1] - d.Along[seg])
 			h := b.pointHeight[seg]
 			if x > 0 {
-				h += x * (b.pointHeight[seg+1] - h)
+				h += float64(x * (b.pointHeight[seg+1] - h))
 			}
 			height[i] = float32(h)
 			if h == h {
@@ -110,8 +110,8 @@ func (b *builder) stationPoints(c int32, east, north []float64) ([]float64, []fl
 		s := math.Min(length, length*float64(i)/float64(n-1))
 		seg = findSegment(d.Along, a, z, seg, s)
 		x := (s - d.Along[seg]) / (d.Along[seg+1] - d.Along[seg])
-		east = append(east, d.East[seg]+x*(d.East[seg+1]-d.East[seg]))
-		north = append(north, d.North[seg]+x*(d.North[seg+1]-d.North[seg]))
+		east = append(east, d.East[seg]+float64(x*(d.East[seg+1]-d.East[seg])))
+		north = append(north, d.North[seg]+float64(x*(d.North[seg+1]-d.North[seg])))
 	}
 	return east, north
 }
@@ -135,11 +135,11 @@ func (b *builder) spanStructures(height, variance []float32) {
 		first, end := d.StationStart[c], d.StationStart[c+1]
 		for i := first; i < end; i++ {
 			x := float64(i-first) / float64(end-first-1)
-			h := p.height + x*(q.height-p.height)
-			openM := math.Min(p.openM+x*length, q.openM+(1-x)*length)
+			h := p.height + float64(x*(q.height-p.height))
+			openM := math.Min(p.openM+float64(x*length), q.openM+float64((1-x)*length))
 			height[i], variance[i] = float32(h), 0
 			if h == h {
-				variance[i] = float32((p.variance+q.variance)/2 + square(structureGrade*openM))
+				variance[i] = float32((p.variance+q.variance)/2 + float64(square(structureGrade*openM)))
 			}
 		}
 	}
@@ -235,7 +235,7 @@ func (b *builder) structureEnds(height, variance []float32) map[int32]ground {
 			h, v, sum := 0.0, 0.0, 0.0
 			for _, e := range chain[j] {
 				w := 1 / e.length
-				h, v, sum = h+w*at[e.to].height, v+w*at[e.to].variance, sum+w
+				h, v, sum = h+float64(w*at[e.to].height), v+float64(w*at[e.to].variance), sum+w
 			}
 			g := at[j]
 			if by := math.Abs(g.height - h/sum); by > worst { // NaN is not

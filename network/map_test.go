@@ -6,6 +6,7 @@ import (
 	"testing"
 
 	"leadline/engine/filter"
+	"leadline/engine/filter/filtertest"
 	"leadline/engine/geo"
 	"leadline/fixtures/outside"
 	"leadline/network"
@@ -50,6 +51,11 @@ func each(t *testing.T, test func(t *testing.T, m *network.Map)) {
 		}
 		test(t, m)
 	})
+}
+
+// TestConformance runs the tests that every space passes.
+func TestConformance(t *testing.T) {
+	each(t, func(t *testing.T, m *network.Map) { filtertest.Space(t, m) })
 }
 
 // TestLines proves what filter.LineSpace promises of the topology: every level

@@ -74,7 +74,7 @@ func (m *Map) Near(p geo.Point, radiusM float64) []Place {
 				if old, ok := best[q.chart]; ok && old.DistM <= dist/scale {
 					continue
 				}
-				along := m.d.Along[i] + t*(m.d.Along[i+1]-m.d.Along[i])
+				along := m.d.Along[i] + float64(t*(m.d.Along[i+1]-m.d.Along[i]))
 				best[q.chart] = Place{q.chart, along, dist / scale}
 			}
 			return true
@@ -101,7 +101,7 @@ func (d *Data) project(p geo.Point, i int32) (t, distM float64) {
 	a := geo.Point{E: d.East[i], N: d.North[i]}
 	v := geo.Point{E: d.East[i+1], N: d.North[i+1]}.Sub(a)
 	w := p.Sub(a)
-	t = (w.E*v.E + w.N*v.N) / (v.E*v.E + v.N*v.N)
+	t = (float64(w.E*v.E) + float64(w.N*v.N)) / (float64(v.E*v.E) + float64(v.N*v.N))
 	t = math.Min(math.Max(t, 0), 1)
-	return t, geo.Point{E: w.E - t*v.E, N: w.N - t*v.N}.Norm()
+	return t, geo.Point{E: w.E - float64(t*v.E), N: w.N - float64(t*v.N)}.Norm()
 }

@@ -119,11 +119,11 @@ func (m *Map) segmentWithin(found []Stretch, cuts []float64, chart, i int32, rin
 	for k := range len(cuts) - 1 {
 		t0, t1 := cuts[k], cuts[k+1]
 		mid := (t0 + t1) / 2
-		if t1 <= t0 || !inside(geo.Point{E: a.E + mid*v.E, N: a.N + mid*v.N}, rings) {
+		if t1 <= t0 || !inside(geo.Point{E: a.E + float64(mid*v.E), N: a.N + float64(mid*v.N)}, rings) {
 			continue
 		}
 		l := d.Along[i+1] - d.Along[i]
-		s := Stretch{chart, d.Along[i] + t0*l, d.Along[i] + t1*l}
+		s := Stretch{chart, d.Along[i] + float64(t0*l), d.Along[i] + float64(t1*l)}
 		if t1 == 1 {
 			s.UpToM = d.Along[i+1] // so that the next segment joins it
 		}
@@ -152,13 +152,13 @@ func joinStretches(s []Stretch) []Stretch {
 // crossing returns where on a-b, as a fraction, it crosses p-q.
 func crossing(a, b, p, q geo.Point) (float64, bool) {
 	v, w := b.Sub(a), q.Sub(p)
-	det := v.E*w.N - v.N*w.E
+	det := float64(v.E*w.N) - float64(v.N*w.E)
 	if det == 0 {
 		return 0, false
 	}
 	u := p.Sub(a)
-	t := (u.E*w.N - u.N*w.E) / det
-	s := (u.E*v.N - u.N*v.E) / det
+	t := (float64(u.E*w.N) - float64(u.N*w.E)) / det
+	s := (float64(u.E*v.N) - float64(u.N*v.E)) / det
 	return t, t > 0 && t < 1 && s >= 0 && s <= 1
 }
 

@@ -134,7 +134,7 @@ func (w *spreader) meanSquare(s, heading, r float64) float64 {
 	for i := w.seg; i < len(w.h) && along[i] < hi; i++ {
 		l := math.Min(hi, along[i+1]) - math.Max(lo, along[i])
 		if l > 0 {
-			sum += l * square(w.h[i]-heading)
+			sum += float64(l * square(w.h[i]-heading))
 		}
 	}
 	if lo < 0 {
@@ -173,13 +173,13 @@ func (w *spreader) beyond(links *filter.Links, ahead bool, c int32, h, heading, 
 			}
 			g += geo.WrapPi(d.segmentHeading(i) - g)
 			l := math.Min(left, d.Along[i+1]-d.Along[i])
-			part += l * square(g-heading)
+			part += float64(l * square(g-heading))
 			left -= l
 		}
 		if left > 0 {
 			part += w.beyond(links, ahead, t, g, heading, left, weight*share[k], depth+1)
 		}
-		sum += share[k] * part
+		sum += float64(share[k] * part)
 	}
 	return sum
 }

@@ -52,7 +52,7 @@ func (s *stitcher) splitSegment(line, seg int32) error {
 				}
 				n := int32(len(s.pos))
 				v := s.pos[b].Sub(s.pos[a])
-				s.pos = append(s.pos, geo.Point{E: s.pos[a].E + t*v.E, N: s.pos[a].N + t*v.N})
+				s.pos = append(s.pos, geo.Point{E: s.pos[a].E + float64(t*v.E), N: s.pos[a].N + float64(t*v.N)})
 				s.alias = append(s.alias, n)
 				s.cuts = append(s.cuts, cut{line, seg, t, n}, cut{r.line, k, u, n})
 				s.notes.Crossings++
@@ -73,11 +73,11 @@ func (s *stitcher) splitSegment(line, seg int32) error {
 // so inside both.
 func intersect(a, b, p, q geo.Point) (t, u float64, ok bool) {
 	v, w, d := b.Sub(a), q.Sub(p), p.Sub(a)
-	det := v.E*w.N - v.N*w.E
+	det := float64(v.E*w.N) - float64(v.N*w.E)
 	if det == 0 {
 		return 0, 0, false
 	}
-	t = (d.E*w.N - d.N*w.E) / det
-	u = (d.E*v.N - d.N*v.E) / det
+	t = (float64(d.E*w.N) - float64(d.N*w.E)) / det
+	u = (float64(d.E*v.N) - float64(d.N*v.E)) / det
 	return t, u, t > 0 && t < 1 && u > 0 && u < 1
 }

@@ -24,7 +24,7 @@ func mustParse(tb testing.TB, text string, opt Options) (*network.Map, Notes) {
 	return m, notes
 }
 
-// ring metres near 30° W, 45° N in degrees, to 1e-9.
+// lonLat is a place, in metres from 30° W, 45° N in degrees, to 1e-9.
 func lonLat(east, north float64) string {
 	return fmt.Sprintf("[%.9f,%.9f]", -30+east/78846.8, 45+north/111131.8)
 }
@@ -306,6 +306,21 @@ func TestNoTurnTo(t *testing.T) {
 	}
 	if got := leads("b", false); fmt.Sprint(got) != "[a 17 d]" {
 		t.Errorf("b leads to %v, want a, 17, d", got)
+	}
+}
+
+// TestSameAgain proves that reading a file twice gives the same map: nothing
+// depends on the order of a hash table or on an address.
+func TestSameAgain(t *testing.T) {
+	for _, opt := range []Options{{}, {SplitCrossings: true, JoinM: 4}} {
+		first, notes := readTown(t, opt)
+		for range 5 {
+			m, again := readTown(t, opt)
+			if again != notes {
+				t.Errorf("notes %+v, then %+v", notes, again)
+			}
+			sameColumns(t, m, first)
+		}
 	}
 }
 

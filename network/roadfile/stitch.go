@@ -199,7 +199,7 @@ func (s *stitcher) joinEnd(n int32) {
 	}
 	nodes := s.lines[best.line].nodes
 	a, b := s.pos[s.find(nodes[best.seg])], s.pos[s.find(nodes[best.seg+1])]
-	s.pos[n] = geo.Point{E: a.E + best.at*(b.E-a.E), N: a.N + best.at*(b.N-a.N)}
+	s.pos[n] = geo.Point{E: a.E + float64(best.at*(b.E-a.E)), N: a.N + float64(best.at*(b.N-a.N))}
 	s.cuts = append(s.cuts, cut{best.line, best.seg, best.at, n})
 }
 
@@ -263,10 +263,10 @@ func (s *stitcher) around(n int32) (near map[int32]bool, layers map[layerKey]boo
 // how far away.
 func project(p, a, b geo.Point) (t, dist float64) {
 	v, w := b.Sub(a), p.Sub(a)
-	if l := v.E*v.E + v.N*v.N; l > 0 {
-		t = math.Min(math.Max((w.E*v.E+w.N*v.N)/l, 0), 1)
+	if l := float64(v.E*v.E) + float64(v.N*v.N); l > 0 {
+		t = math.Min(math.Max((float64(w.E*v.E)+float64(w.N*v.N))/l, 0), 1)
 	}
-	return t, geo.Point{E: w.E - t*v.E, N: w.N - t*v.N}.Norm()
+	return t, geo.Point{E: w.E - float64(t*v.E), N: w.N - float64(t*v.N)}.Norm()
 }
 
 // applyCuts puts the cuts into the lines and replaces joined nodes.
@@ -321,7 +321,7 @@ func (l *line) insert(cuts []cut) {
 		for len(cuts) > 0 && int(cuts[0].segment) == k {
 			nodes = append(nodes, cuts[0].node)
 			if l.heightM != nil {
-				heights = append(heights, l.heightM[k]+cuts[0].at*(l.heightM[k+1]-l.heightM[k]))
+				heights = append(heights, l.heightM[k]+float64(cuts[0].at*(l.heightM[k+1]-l.heightM[k])))
 			}
 			cuts = cuts[1:]
 		}
