@@ -179,12 +179,19 @@ func (c *canvas) foot(r Report) {
 	c.text(margin+column, top+130, licence, regular, 15, faintColour)
 }
 
-// scaleBar draws a bar of 1, 2 or 5 times a power of ten metres, 150 to 370
-// pixels long.
+// scaleBar draws a bar of 1, 2 or 5 times a power of ten metres, at most
+// 340 pixels long.
 func (c *canvas) scaleBar(x, y int) {
-	metres := math.Pow(10, math.Floor(math.Log10(340/c.perM)))
+	const longest = 340 // pixels
+	metres := 1.0
+	for metres*c.perM > longest {
+		metres /= 10
+	}
+	for 10*metres*c.perM <= longest {
+		metres *= 10
+	}
 	for _, k := range []float64{5, 2} {
-		if metres*k*c.perM <= 340 {
+		if metres*k*c.perM <= longest {
 			metres *= k
 			break
 		}

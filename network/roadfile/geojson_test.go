@@ -24,7 +24,7 @@ func mustParse(tb testing.TB, text string, opt Options) (*network.Map, Notes) {
 	return m, notes
 }
 
-// lonLat is a place, in metres from 30° W, 45° N in degrees, to 1e-9.
+// lonLat is a place, given in metres from 30° W, 45° N, in degrees to 1e-9.
 func lonLat(east, north float64) string {
 	return fmt.Sprintf("[%.9f,%.9f]", -30+east/78846.8, 45+north/111131.8)
 }

@@ -133,8 +133,12 @@ func asPBF(plain bool) []byte {
 		} else {
 			var z bytes.Buffer
 			w := zlib.NewWriter(&z)
-			w.Write(content)
-			w.Close()
+			if _, err := w.Write(content); err != nil {
+				panic(err) // a bytes.Buffer takes everything
+			}
+			if err := w.Close(); err != nil {
+				panic(err)
+			}
 			blob.number(2, uint64(len(content)))
 			blob.bytes(3, z.Bytes())
 		}
@@ -230,8 +234,12 @@ const headerBytes = 4 + 13 + 30
 func TestExtract(t *testing.T) {
 	var zipped bytes.Buffer
 	z := gzip.NewWriter(&zipped)
-	z.Write([]byte(asXML()))
-	z.Close()
+	if _, err := z.Write([]byte(asXML())); err != nil {
+		t.Fatal(err)
+	}
+	if err := z.Close(); err != nil {
+		t.Fatal(err)
+	}
 	var first *network.Map
 	for name, file := range map[string][]byte{
 		"XML": []byte(asXML()), "XML in gzip": zipped.Bytes(), "PBF": asPBF(false), "PBF of plain nodes": asPBF(true),

@@ -84,7 +84,7 @@ func (c *collector) read(r io.ReadSeeker) error {
 	b := bufio.NewReaderSize(io.LimitReader(r, c.opt.MaxBytes), 1<<16)
 	head, err := b.Peek(16)
 	if len(head) == 0 {
-		if err == nil || err == io.EOF {
+		if err == nil || errors.Is(err, io.EOF) {
 			return errors.New("the file is empty")
 		}
 		return err
@@ -109,25 +109,30 @@ func (c *collector) read(r io.ReadSeeker) error {
 	case '<':
 		return c.readOSMXML(b)
 	case 0:
-		return errors.New("the file holds nothing but white space")
+		return errors.New("the file begins with nothing but white space")
 	default:
 		return fmt.Errorf("the file begins with %q: neither GeoJSON, nor OpenStreetMap XML, nor PBF", head)
 	}
 }
 
-// firstByte skips white space and a byte order mark, and peeks.
+// firstByte skips white space and a byte order mark, and peeks; 0 means that
+// nothing else is there.
 func firstByte(b *bufio.Reader) byte {
-	if mark, _ := b.Peek(3); bytes.Equal(mark, []byte("\ufeff")) {
-		b.Discard(3)
-	}
-	for {
-		x, err := b.ReadByte()
-		if err != nil {
+	for skip := 0; ; {
+		head, _ := b.Peek(skip + 3)
+		rest := head[min(skip, len(head)):]
+		switch {
+		case len(rest) == 0 || skip > 4000: // of the reader's 65536 bytes
 			return 0
-		}
-		if x != ' ' && x != '\n' && x != '\r' && x != '\t' {
-			b.UnreadByte()
-			return x
+		case skip == 0 && bytes.Equal(rest, []byte("\ufeff")):
+			skip = 3
+		case bytes.IndexByte([]byte(" \n\r\t"), rest[0]) >= 0:
+			skip++
+		default:
+			if _, err := b.Discard(skip); err != nil {
+				return 0
+			}
+			return rest[0]
 		}
 	}
 }
