@@ -10,9 +10,9 @@ import (
 // New makes a map of a graph. The order of charts follows the order of roads,
 // the forward direction first, so that the same graph gives the same map.
 //
-// Roads of no length (all points at one place) are left out, as are roads
-// that repeat another one point for point between the same junctions; roads
-// that repeat it the other way round open it in that direction.
+// Roads of no length (all points at one place) are left out; points that repeat
+// the one before them too. Roads that repeat one another are kept: the reader
+// of a file knows better what they mean, and Check lists them.
 func New(g Graph, o Options) (*Map, error) {
 	if err := o.Validate(); err != nil {
 		return nil, err

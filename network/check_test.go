@@ -25,7 +25,8 @@ func TestCheckTown(t *testing.T) {
 		{"repeated pieces (Dyer Court, twice the same two)", notes.Repeated, 2},
 		{"lines of other classes (Church Path)", notes.OtherClass, 1},
 		{"areas (Corn Square)", notes.Areas, 1},
-		{"tunnels", notes.Tunnels, 1}, {"bridges", notes.Bridges, 1},
+		{"tunnels", notes.Tunnels, 1},
+		{"bridges", notes.Bridges, 1},
 		{"traps (Ferry Landing)", r.Traps.Count, 1},
 		{"near misses (Ropewalk Yard)", r.NearMisses.Count, 1},
 		{"weak components (the town, Ropewalk Yard)", r.Weak.Count, 2},
@@ -127,8 +128,10 @@ func TestTrueLengths(t *testing.T) {
 	var g network.Graph
 	var want []float64
 	for i, ends := range [][2]geo.Point{
-		{at(-50000, -50000), at(50000, 50000)}, {at(50000, -50000), at(50000, 50000)},
-		{at(-50000, 40000), at(50000, 40000)}, {at(49000, 0), at(50000, 300)},
+		{at(-50000, -50000), at(50000, 50000)},
+		{at(50000, -50000), at(50000, 50000)},
+		{at(-50000, 40000), at(50000, 40000)},
+		{at(49000, 0), at(50000, 300)},
 	} {
 		// A straight line of the frame, in steps of 500 m.
 		var points []geo.Point

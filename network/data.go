@@ -174,9 +174,15 @@ func (d *Data) Check() error {
 		name string
 		n    int
 	}{
-		{"to", len(d.To)}, {"twin", len(d.Twin)}, {"name", len(d.Name.Index)}, {"ref", len(d.Ref.Index)},
-		{"class", len(d.Class.Index)}, {"feature", len(d.Feature.Index)}, {"speed", len(d.Speed)},
-		{"flags", len(d.Flags)}, {"layer", len(d.Layer)},
+		{"to", len(d.To)},
+		{"twin", len(d.Twin)},
+		{"name", len(d.Name.Index)},
+		{"ref", len(d.Ref.Index)},
+		{"class", len(d.Class.Index)},
+		{"feature", len(d.Feature.Index)},
+		{"speed", len(d.Speed)},
+		{"flags", len(d.Flags)},
+		{"layer", len(d.Layer)},
 	} {
 		if c.n != n {
 			return fmt.Errorf("column %s has %d entries, want %d, one an edge", c.name, c.n, n)

@@ -72,9 +72,13 @@ func TestTurnTable(t *testing.T) {
 		{"and left into the road, or driven again", loop, network.Options{}, 2, links{0: 0.5, 2: 0.5}},
 		{"a ban", ban(network.Ban{From: 0, Via: 0, To: 1}), network.Options{}, 1, links{4: 0.5, 6: 0.5}},
 		{"a ban elsewhere changes nothing", ban(network.Ban{From: 0, Via: 1, To: 1}), network.Options{}, 1, links{2: 1. / 3, 4: 1. / 3, 6: 1. / 3}},
-		{"bans that leave nothing make a U-turn", ban(
-			network.Ban{From: 0, Via: 0, To: 1}, network.Ban{From: 0, Via: 0, To: 2}, network.Ban{From: 0, Via: 0, To: 3}),
-			network.Options{}, 1, links{0: 1}},
+		{
+			"bans that leave nothing make a U-turn", ban(
+				network.Ban{From: 0, Via: 0, To: 1}, network.Ban{From: 0, Via: 0, To: 2}, network.Ban{From: 0, Via: 0, To: 3}),
+			network.Options{},
+			1,
+			links{0: 1},
+		},
 		{"a banned U-turn", ban(network.Ban{From: 0, Via: 0, To: 0}), network.Options{UTurnWeight: 0.1}, 1, links{2: 1. / 3, 4: 1. / 3, 6: 1. / 3}},
 	} {
 		t.Run(c.name, func(t *testing.T) {

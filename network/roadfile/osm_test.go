@@ -24,8 +24,11 @@ import (
 // turn restrictions.
 var extract = osm.OSM{
 	Nodes: osm.Nodes{
-		{ID: 1, Lon: -30, Lat: 45}, {ID: 2, Lon: -30.001, Lat: 45}, {ID: 3, Lon: -30, Lat: 45.001},
-		{ID: 4, Lon: -30, Lat: 44.999}, {ID: 5, Lon: -29.999, Lat: 45},
+		{ID: 1, Lon: -30, Lat: 45},
+		{ID: 2, Lon: -30.001, Lat: 45},
+		{ID: 3, Lon: -30, Lat: 45.001},
+		{ID: 4, Lon: -30, Lat: 44.999},
+		{ID: 5, Lon: -29.999, Lat: 45},
 	},
 	Ways: osm.Ways{
 		way(10, "highway", "primary", "name", "West", "maxspeed", "50", 2, 1),
