@@ -2,6 +2,7 @@
 package replay
 
 import (
+	"cmp"
 	"errors"
 	"fmt"
 	"math"
@@ -12,6 +13,7 @@ import (
 	"leadline/engine/drivefile"
 	"leadline/engine/sensor"
 	"leadline/engine/session"
+	"leadline/engine/study/score"
 	"leadline/engine/summary"
 )
 
@@ -195,4 +197,17 @@ func (r *Result) time(filterS float64, tookMs []float64, events []sensor.Event) 
 		t.TimesRealTime = t.DriveS / filterS
 	}
 	t.P50Ms, t.P99Ms, t.MaxMs = at(0.5), at(0.99), tookMs[n-1]
+}
+
+// Truth returns a drive's truths for scoring: those of its vehicle or of no
+// named one, by time.
+func Truth(d *drivefile.Drive) []score.Truth {
+	var out []score.Truth
+	for _, t := range d.Truths {
+		if t.Vehicle == "" || t.Vehicle == d.Header.Vehicle {
+			out = append(out, score.Truth{TimeNS: int64(t.Time), At: t.Position, SigmaM: t.SigmaM})
+		}
+	}
+	slices.SortStableFunc(out, func(a, b score.Truth) int { return cmp.Compare(a.TimeNS, b.TimeNS) })
+	return out
 }

@@ -1,0 +1,156 @@
+package main
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"math"
+	"sync/atomic"
+	"time"
+
+	"github.com/spf13/cobra"
+	"google.golang.org/grpc/codes"
+	"google.golang.org/grpc/status"
+
+	"leadline/engine/client"
+	"leadline/engine/drivefile"
+	"leadline/engine/study/replay"
+	"leadline/engine/wire"
+	leadlinev1 "leadline/proto/leadline/v1"
+)
+
+type feedOptions struct {
+	to, mapName, suite string
+	speed              float64
+	replace            bool
+	asJSON             bool
+	allowRefused       bool
+}
+
+func feedCommand() *cobra.Command {
+	var o feedOptions
+	c := &cobra.Command{
+		Use:   "feed DRIVE --to ADDR",
+		Short: "Send a recorded drive to a server",
+		Args:  cobra.ExactArgs(1),
+		RunE:  func(c *cobra.Command, args []string) error { return feed(c, &o, args[0]) },
+	}
+	f := c.Flags()
+	f.StringVar(&o.to, "to", defaultAddress, "address of the server")
+	f.StringVar(&o.mapName, "map", "", "name of the map at the server, in place of the one in the drive's header")
+	f.StringVar(&o.suite, "suite", "", "name of the suite at the server, in place of the one in the drive's header")
+	f.Float64Var(&o.speed, "speed", 0, "send at this many times real time; 0 is as fast as possible")
+	f.BoolVar(&o.replace, "replace", false, "give up another drive that the vehicle has not finished")
+	f.BoolVar(&o.asJSON, "json", false, "print what the server says at the end as JSON")
+	f.BoolVar(&o.allowRefused, "allow-refused", false, "exit with status 0 although measurements were refused")
+	return c
+}
+
+func feed(c *cobra.Command, o *feedOptions, path string) error {
+	if !(o.speed >= 0) || math.IsInf(o.speed, 0) {
+		return fmt.Errorf("--speed is %v: give a positive number, or 0 for as fast as possible", o.speed)
+	}
+	d, err := readDrive(path)
+	if err != nil {
+		return err
+	}
+	if o.mapName != "" {
+		d.Header.Map = o.mapName
+	}
+	if o.suite != "" {
+		d.Header.Suite = o.suite
+	}
+	if len(d.Events) == 0 {
+		return fmt.Errorf("%s: %w", path, replay.ErrNoMeasurements)
+	}
+	closed, refusal, err := o.send(c, d, driveName(path))
+	if err != nil {
+		return fmt.Errorf("%s: %w", path, serverError(err, o.to))
+	}
+	if o.asJSON {
+		if err := printMessage(c.OutOrStdout(), closed); err != nil {
+			return err
+		}
+	} else {
+		fmt.Fprintf(c.OutOrStdout(), "%s: %d posteriors from %d measurements, %d refused\nsha256 %s\n",
+			driveName(path), closed.GetPosteriors(), closed.GetAccepted()+closed.GetRefused(), closed.GetRefused(), closed.GetPosteriorSha256())
+		printPosterior(c.OutOrStdout(), closed.GetPosterior())
+	}
+	if n := closed.GetRefused(); n > 0 && !o.allowRefused {
+		return fmt.Errorf("%s: %d of %d measurements were refused; %w; with --allow-refused this is no error",
+			path, n, n+closed.GetAccepted(), refusal)
+	}
+	return nil
+}
+
+// send carries a drive to the server, in the order of events.
+func (o *feedOptions) send(c *cobra.Command, d *drivefile.Drive, name string) (*leadlinev1.Closed, error, error) {
+	conn, err := client.Dial(o.to)
+	if err != nil {
+		return nil, nil, err
+	}
+	defer conn.Close()
+	ctx, cancel := context.WithCancel(context.Background())
+	defer cancel()
+	var first atomic.Pointer[leadlinev1.Refusal]
+	f, err := client.Open(ctx, conn, client.Drive{
+		Header: wire.FromHeader(d.Header), Replace: o.replace, Reply: leadlinev1.Reply_REPLY_NONE,
+		OnRefusal: func(r *leadlinev1.Refusal) { first.CompareAndSwap(nil, r) },
+	})
+	if err != nil {
+		return nil, nil, err
+	}
+	show, end := progress(c.ErrOrStderr(), name)
+	defer end()
+	events := replay.Ordered(d.Events)
+	began := time.Now()
+	for i, ev := range events {
+		if o.speed > 0 {
+			if wait := time.Duration(ev.Time.Seconds(events[0].Time)/o.speed*1e9) - time.Since(began); wait > 0 {
+				if err := f.Flush(); err != nil {
+					f.Abort()
+					return nil, nil, err
+				}
+				time.Sleep(wait)
+			}
+		}
+		if err := f.Send(wire.FromEvent(ev)); err != nil {
+			f.Abort()
+			return nil, nil, err
+		}
+		if show != nil && i%256 == 0 {
+			show(i, len(events))
+		}
+	}
+	closed, err := f.Close()
+	var refusal error
+	if r := first.Load(); r != nil {
+		refusal = refusalError(r)
+	}
+	return closed, refusal, err
+}
+
+// refusalError words a refusal as replay does.
+func refusalError(r *leadlinev1.Refusal) error {
+	t, err := wire.Time(r.GetTime())
+	if err != nil {
+		return fmt.Errorf("a measurement without a time was refused: %s", r.GetDetail())
+	}
+	return replay.Refusal{Time: t, Sensor: r.GetSensor(), Number: r.GetNumber(), Reason: reasonText(r.GetReason()), Detail: r.GetDetail()}
+}
+
+// serverError words what a call ended with: what the server said, or that it
+// could not be reached.
+func serverError(err error, address string) error {
+	st, ok := status.FromError(err)
+	if !ok {
+		return err
+	}
+	switch st.Code() {
+	case codes.Unavailable:
+		return fmt.Errorf("no answer from the server at %s (%s): is it running there? what was not acknowledged must be sent again", address, oneLine(st.Message()))
+	case codes.Unimplemented:
+		return fmt.Errorf("the server at %s does not do that (%s): is it a Leadline server of this version?", address, oneLine(st.Message()))
+	}
+	return errors.New(oneLine(st.Message()))
+}

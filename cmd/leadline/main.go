@@ -1,0 +1,125 @@
+// Command leadline compiles maps, replays drives over them, serves positions
+// and asks for them. See the README for its commands.
+package main
+
+import (
+	"errors"
+	"fmt"
+	"io"
+	"os"
+	"runtime/debug"
+	"strings"
+
+	"github.com/spf13/cobra"
+)
+
+// version is set by the linker; see the Makefile.
+var version = ""
+
+// The exit statuses.
+const (
+	exitDone    = 0
+	exitFailure = 1 // the answer is a failure
+	exitBad     = 2 // wrong use or bad input
+)
+
+// failure is an answer that is a failure, where everything ran as it should.
+type failure struct{ error }
+
+func main() { os.Exit(run(os.Args[1:], os.Stdout, os.Stderr)) }
+
+// run runs a command line. An error is one line on errs.
+func run(args []string, out, errs io.Writer) int {
+	root := newRoot()
+	root.SetArgs(args)
+	root.SetOut(out)
+	root.SetErr(errs)
+	err := root.Execute()
+	if err == nil {
+		return exitDone
+	}
+	fmt.Fprintln(errs, "leadline: "+oneLine(err.Error()))
+	var f failure
+	if errors.As(err, &f) {
+		return exitFailure
+	}
+	return exitBad
+}
+
+func newRoot() *cobra.Command {
+	root := &cobra.Command{
+		Use:   "leadline",
+		Short: "Where are you, given what the map says you should be measuring?",
+		Long: `Leadline positions vehicles on maps - road networks and height rasters - when
+satellite fixes fail. A map becomes a grid of cells, a filter carries
+probability over the cells, motion moves it and measurements reweight it.
+
+It is an aid and not certified: defer to charts, controllers, local rules and
+licensed navigators.
+
+Exit status: 0 done, 1 the answer is a failure, 2 wrong use or bad input.`,
+		Version:       versionText(),
+		SilenceErrors: true, SilenceUsage: true,
+		CompletionOptions: cobra.CompletionOptions{HiddenDefaultCmd: true},
+	}
+	root.SetVersionTemplate("leadline {{.Version}}\n")
+	root.SetFlagErrorFunc(func(c *cobra.Command, err error) error {
+		return fmt.Errorf("%w; see `%s --help`", err, c.CommandPath())
+	})
+	root.AddCommand(mapCommand(), replayCommand(), serveCommand(), feedCommand(), whereCommand(), demoCommand(), suiteCommand())
+	for _, c := range append(root.Commands(), root) {
+		helpForWrongArgs(c)
+	}
+	return root
+}
+
+// helpForWrongArgs ends complaints about arguments with where to look.
+func helpForWrongArgs(c *cobra.Command) {
+	for _, sub := range c.Commands() {
+		if sub.HasSubCommands() {
+			helpForWrongArgs(sub)
+		}
+	}
+	check := c.Args
+	if check == nil {
+		check = cobra.NoArgs
+	}
+	c.Args = func(c *cobra.Command, args []string) error {
+		if err := check(c, args); err != nil {
+			first, _, _ := strings.Cut(err.Error(), "\n")
+			return fmt.Errorf("%s; see `%s --help`", first, c.CommandPath())
+		}
+		return nil
+	}
+	if c.HasSubCommands() && c.Run == nil && c.RunE == nil {
+		c.RunE = func(c *cobra.Command, _ []string) error { return c.Help() }
+	}
+}
+
+func versionText() string {
+	if version != "" {
+		return version
+	}
+	if info, ok := debug.ReadBuildInfo(); ok {
+		for _, s := range info.Settings {
+			if s.Key == "vcs.revision" && len(s.Value) >= 12 {
+				return s.Value[:12]
+			}
+		}
+	}
+	return "unknown"
+}
+
+// oneLine makes a line of a message, whatever a file brought into it.
+func oneLine(s string) string {
+	lines := strings.FieldsFunc(s, func(r rune) bool { return r == '\n' || r == '\r' })
+	for i, l := range lines {
+		lines[i] = strings.TrimSpace(l)
+	}
+	return strings.Map(func(r rune) rune {
+		if r < ' ' || r == 0x7f {
+			return ' '
+		}
+		return r
+	}, strings.Join(lines, "; "))
+}

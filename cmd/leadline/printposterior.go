@@ -1,0 +1,101 @@
+package main
+
+import (
+	"bytes"
+	"encoding/json"
+	"fmt"
+	"io"
+	"strings"
+	"time"
+
+	"google.golang.org/protobuf/encoding/protojson"
+	"google.golang.org/protobuf/proto"
+
+	"leadline/engine/session"
+	leadlinev1 "leadline/proto/leadline/v1"
+)
+
+// printMessage prints a message of the API as JSON with its field names.
+func printMessage(w io.Writer, m proto.Message) error {
+	b, err := protojson.MarshalOptions{UseProtoNames: true, EmitUnpopulated: true}.Marshal(m)
+	if err != nil {
+		return err
+	}
+	// Its spacing is varied on purpose: Indent evens it out.
+	var out bytes.Buffer
+	if err := json.Indent(&out, b, "", "  "); err != nil {
+		return err
+	}
+	out.WriteByte('\n')
+	_, err = out.WriteTo(w)
+	return err
+}
+
+// printPosterior prints what a person wants to know of a posterior.
+func printPosterior(w io.Writer, p *leadlinev1.Posterior) {
+	if p == nil {
+		fmt.Fprintln(w, "no posterior")
+		return
+	}
+	line := func(label, format string, args ...any) {
+		fmt.Fprintf(w, "  %-12s %s\n", label, fmt.Sprintf(format, args...))
+	}
+	fmt.Fprintf(w, "%s is %s at %s (%.0f s ago)\n", p.GetVehicle(), words(p.GetStatus().String(), "STATUS_"), p.GetTime().AsTime().Format(time.RFC3339Nano), p.GetAgeS())
+	r := p.GetRadii()
+	line("mean", "lon %.6f, lat %.6f; 50 %% within %.1f m, 95 %% within %.1f m, 99 %% within %.1f m",
+		p.GetMean().GetLon(), p.GetMean().GetLat(), r.GetRadius50M(), r.GetRadius95M(), r.GetRadius99M())
+	if q := p.GetProtection(); q.RadiusM != nil {
+		line("protection", "%.1f m at a risk of %.1g", q.GetRadiusM(), q.GetRisk())
+	} else {
+		line("protection", "unbounded at a risk of %.1g: %s", q.GetRisk(), q.GetUnboundedReason())
+	}
+	best := p.GetMostProbable()
+	line("most probable", "lon %.6f, lat %.6f", best.GetPosition().GetLon(), best.GetPosition().GetLat())
+	for i, e := range p.GetEdges() {
+		if i == 3 || e.GetProbability() < 0.01 {
+			break
+		}
+		name := e.GetName()
+		if name == "" {
+			name = "unnamed road"
+		}
+		line("road", "%.1f %% %s (edge %d)", 100*e.GetProbability(), name, e.GetEdge())
+	}
+	for i, m := range p.GetModes() {
+		if i == 3 || len(p.GetModes()) == 1 {
+			break
+		}
+		line("mode", "%.1f %% around lon %.6f, lat %.6f", 100*m.GetMass(), m.GetMean().GetLon(), m.GetMean().GetLat())
+	}
+	if h := p.GetHeading(); h != nil {
+		line("heading", "%.0f° ± %.0f°", h.GetDeg(), h.GetSigmaDeg())
+	}
+	if s := p.GetSpeed(); s != nil {
+		line("speed", "%.1f m/s", s.GetMps())
+	}
+	for _, n := range p.GetNuisances() {
+		line("estimated", "%s %.5g ± %.2g", n.GetName(), n.GetMean(), n.GetSigma())
+	}
+	n := p.GetCounts()
+	line("measurements", "%d accepted, %d refused; log evidence %.1f", n.GetAccepted(), n.GetRefused(), p.GetLogEvidence())
+	if p.GetGapS() > 0 {
+		line("gap", "nothing measured the motion for %.1f s", p.GetGapS())
+	}
+}
+
+func durability(p *leadlinev1.Posterior) string {
+	if p.GetDurable() {
+		return "durable"
+	}
+	return "not durable: a restart of the server forgets it"
+}
+
+// words turns a name of an enumeration into words.
+func words(name, prefix string) string {
+	return strings.ReplaceAll(strings.ToLower(strings.TrimPrefix(name, prefix)), "_", " ")
+}
+
+// reasonText is a refusal's reason in the session's words.
+func reasonText(r leadlinev1.RefusalReason) session.Reason {
+	return session.Reason(words(r.String(), "REFUSAL_REASON_"))
+}

@@ -1,0 +1,88 @@
+package main
+
+import (
+	"context"
+	"fmt"
+	"strings"
+	"time"
+
+	"github.com/spf13/cobra"
+	"google.golang.org/protobuf/proto"
+
+	"leadline/engine/client"
+	leadlinev1 "leadline/proto/leadline/v1"
+)
+
+type whereOptions struct {
+	at, area string
+	asJSON   bool
+	regions  []float64
+	risk     float64
+	timeout  time.Duration
+}
+
+func whereCommand() *cobra.Command {
+	var o whereOptions
+	c := &cobra.Command{
+		Use:   "where VEHICLE --at ADDR",
+		Short: "Ask a server where a vehicle is",
+		Args:  cobra.ExactArgs(1),
+		RunE:  func(c *cobra.Command, args []string) error { return where(c, &o, args[0]) },
+	}
+	f := c.Flags()
+	f.StringVar(&o.at, "at", defaultAddress, "address of the server")
+	f.BoolVar(&o.asJSON, "json", false, "print the answer as JSON, regions as polygons")
+	f.Float64SliceVar(&o.regions, "region", nil, "percentage whose smallest region is wanted, such as 95; repeat for several")
+	f.Float64Var(&o.risk, "risk", 0, "integrity risk of the protection radius (default: the suite's)")
+	f.StringVar(&o.area, "area", "", "GeoJSON file with one polygon whose probability is wanted")
+	f.DurationVar(&o.timeout, "timeout", 10*time.Second, "how long to wait for an answer")
+	return c
+}
+
+func where(c *cobra.Command, o *whereOptions, vehicle string) error {
+	req := &leadlinev1.WhereRequest{Vehicle: vehicle}
+	for _, percent := range o.regions {
+		if !(percent > 0 && percent < 100) {
+			return fmt.Errorf("--region is %v: give a percentage above 0 and below 100", percent)
+		}
+		req.RegionFractions = append(req.RegionFractions, percent/100)
+	}
+	if c.Flags().Changed("risk") {
+		req.IntegrityRisk = proto.Float64(o.risk)
+	}
+	if o.area != "" {
+		var err error
+		if req.Area, err = readArea(o.area); err != nil {
+			return err
+		}
+	}
+	conn, err := client.Dial(o.at)
+	if err != nil {
+		return fmt.Errorf("--at %s: %w", o.at, err)
+	}
+	defer conn.Close()
+	ctx, cancel := context.WithTimeout(context.Background(), o.timeout)
+	defer cancel()
+	answer, err := leadlinev1.NewPositionServiceClient(conn).Where(ctx, req)
+	if err != nil {
+		return serverError(err, o.at)
+	}
+	w := c.OutOrStdout()
+	if o.asJSON {
+		return printMessage(w, answer)
+	}
+	p := answer.GetPosterior()
+	printPosterior(w, p)
+	for _, r := range p.GetRegions() {
+		fmt.Fprintf(w, "  %-12s %.4g %% within %.0f m² in %d pieces (polygons with --json)\n", "region", 100*r.GetProbability(), r.GetAreaM2(), len(r.GetPolygons()))
+	}
+	if p.AreaProbability != nil {
+		fmt.Fprintf(w, "  %-12s %.4g %% inside %s\n", "area", 100*p.GetAreaProbability(), o.area)
+	}
+	state := "goes on"
+	if answer.GetEnded() {
+		state = "has ended"
+	}
+	fmt.Fprintf(w, "  %-12s %s, %s; sha256 of what is final %s\n", "drive", state, strings.ToLower(durability(p)), answer.GetPosteriorSha256())
+	return nil
+}

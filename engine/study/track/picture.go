@@ -1,0 +1,330 @@
+package track
+
+import (
+	"fmt"
+	"image"
+	"image/color"
+	"io"
+	"math"
+
+	"gonum.org/v1/plot"
+	"gonum.org/v1/plot/plotter"
+	"gonum.org/v1/plot/text"
+	"gonum.org/v1/plot/vg"
+	"gonum.org/v1/plot/vg/draw"
+	"gonum.org/v1/plot/vg/vgimg"
+
+	"leadline/engine/geo"
+	"leadline/engine/summary"
+)
+
+// Ground is what lies under a track in a picture: roads as lines of the frame,
+// or heights; either may be nil.
+type Ground struct {
+	Frame  geo.Frame
+	Roads  [][]geo.Point
+	Relief geo.Field
+}
+
+// Colours that people with any of the common colour deficiencies tell apart
+// (Okabe and Ito, "Color Universal Design", 2008), on white or light grey.
+var (
+	roadColour   = color.RGBA{0xb8, 0xb8, 0xb8, 0xff}
+	truthColour  = color.RGBA{0x00, 0x72, 0xb2, 0xff}  // blue
+	meanColour   = color.RGBA{0xd5, 0x5e, 0x00, 0xff}  // vermilion
+	radiusColour = color.NRGBA{0xe6, 0x9f, 0x00, 0x50} // orange, translucent
+	searchColour = color.RGBA{0x55, 0x55, 0x55, 0xff}
+)
+
+const (
+	pictureDPI = 160
+	// pictureSide is the longer side of the map in the picture.
+	pictureSide = 8 * vg.Inch
+	// mostCircles bounds the radii that are drawn, reliefCells the relief.
+	mostCircles = 150
+	reliefCells = 500
+)
+
+// Picture draws the track over its ground as a PNG: the truth, the mean while
+// located, its 95 % radius now and then, and the most probable places before.
+func (t *Track) Picture(w io.Writer, g Ground) error {
+	truth := make(plotter.XYs, 0, len(t.Truth))
+	box := geo.EmptyBox()
+	for _, at := range t.Truth {
+		p := g.Frame.Forward(at.At)
+		box = box.Extend(p)
+		truth = append(truth, plotter.XY{X: p.E, Y: p.N})
+	}
+	var located []plotter.XYs // a line for each stretch
+	var circles []plotter.XYs
+	var search plotter.XYs
+	was := false
+	every := max(1, t.count(summary.Located)/mostCircles)
+	n := 0
+	for _, p := range t.Posteriors {
+		if p.Status != summary.Located {
+			was = false
+			at := g.Frame.Forward(p.MostProbable.Position)
+			search = append(search, plotter.XY{X: at.E, Y: at.N})
+			continue
+		}
+		if !was {
+			located = append(located, nil)
+		}
+		was = true
+		line := &located[len(located)-1]
+		*line = append(*line, plotter.XY{X: p.MeanFrame.E, Y: p.MeanFrame.N})
+		box = box.Extend(p.MeanFrame)
+		if n%every == 0 {
+			_, k := g.Frame.Convergence(p.MeanFrame)
+			circles = append(circles, circle(p.MeanFrame, p.Radius95M*k))
+		}
+		n++
+	}
+	if box.Min.E > box.Max.E { // neither truth nor located: what there is
+		for _, xy := range search {
+			box = box.Extend(geo.Point{E: xy.X, N: xy.Y})
+		}
+	}
+	if box.Min.E > box.Max.E {
+		return fmt.Errorf("drawing the track: the drive has neither posteriors nor truth")
+	}
+	box = margin(box)
+	origin := box.Min
+	km := func(xys plotter.XYs) plotter.XYs { // of the picture, in place
+		for i := range xys {
+			xys[i].X, xys[i].Y = (xys[i].X-origin.E)/1000, (xys[i].Y-origin.N)/1000
+		}
+		return xys
+	}
+	p := plot.New()
+	p.Title.Text = t.title()
+	lon, lat := g.Frame.Inverse(origin).Degrees()
+	p.X.Label.Text = fmt.Sprintf("kilometres east of lon %.4f°, lat %.4f°", lon, lat)
+	p.Y.Label.Text = "kilometres north"
+	style(p)
+	wide, high := (box.Max.E-box.Min.E)/1000, (box.Max.N-box.Min.N)/1000
+	if g.Relief != nil {
+		p.Add(plotter.NewImage(relief(g.Relief, box), 0, 0, wide, high))
+	}
+	add := func(xys plotter.XYs, c color.Color, width vg.Length, dashes ...vg.Length) (*plotter.Line, error) {
+		l, err := plotter.NewLine(xys)
+		if err != nil {
+			return nil, err
+		}
+		l.LineStyle = draw.LineStyle{Color: c, Width: width, Dashes: dashes}
+		p.Add(l)
+		return l, nil
+	}
+	var legend []struct {
+		name string
+		of   plot.Thumbnailer
+	}
+	show := func(name string, of plot.Thumbnailer) {
+		legend = append(legend, struct {
+			name string
+			of   plot.Thumbnailer
+		}{name, of})
+	}
+	for _, road := range g.Roads {
+		if xys := clip(road, box); len(xys) > 1 {
+			if _, err := add(km(xys), roadColour, vg.Points(0.8)); err != nil {
+				return err
+			}
+		}
+	}
+	for i, c := range circles {
+		poly, err := plotter.NewPolygon(km(c))
+		if err != nil {
+			return err
+		}
+		poly.Color, poly.Width = radiusColour, 0
+		p.Add(poly)
+		if i == 0 {
+			show("95 % radius", poly)
+		}
+	}
+	if len(truth) > 1 {
+		l, err := add(km(truth), truthColour, vg.Points(2.6))
+		if err != nil {
+			return err
+		}
+		show("truth", l)
+	}
+	if inside := within(search, box); len(inside) > 0 {
+		s, err := plotter.NewScatter(km(inside))
+		if err != nil {
+			return err
+		}
+		s.GlyphStyle = draw.GlyphStyle{Color: searchColour, Radius: vg.Points(1.8), Shape: draw.CrossGlyph{}}
+		p.Add(s)
+		show("most probable, not located", s)
+	}
+	for i, xys := range located {
+		if len(xys) < 2 {
+			continue
+		}
+		l, err := add(km(xys), meanColour, vg.Points(1.1))
+		if err != nil {
+			return err
+		}
+		if i == 0 || len(legend) > 0 && legend[len(legend)-1].name != "mean, located" {
+			show("mean, located", l)
+		}
+	}
+	p.X.Min, p.X.Max, p.Y.Min, p.Y.Max = 0, wide, 0, high
+	p.X.Padding, p.Y.Padding = 0, 0
+	for _, e := range legend {
+		p.Legend.Add(e.name, e.of)
+	}
+	return save(w, p, wide, high)
+}
+
+// save draws the plot so that its data area has the map's shape, with the
+// legend below the title.
+func save(w io.Writer, p *plot.Plot, wide, high float64) error {
+	wantW := pictureSide * vg.Length(wide/math.Max(wide, high))
+	wantH := pictureSide * vg.Length(high/math.Max(wide, high))
+	key := p.Legend
+	p.Legend = plot.NewLegend()
+	p.Legend.TextStyle = key.TextStyle
+	key.Left, key.Top = true, true
+	key.XOffs, key.YOffs = vg.Points(12), -vg.Points(4)
+	keyH := vg.Points(86)
+	width, height := wantW+vg.Inch, wantH+vg.Inch
+	for range 3 {
+		d := p.DataCanvas(draw.NewCanvas(vgimg.New(width, height), width, height))
+		width += wantW - (d.Max.X - d.Min.X)
+		height += wantH - (d.Max.Y - d.Min.Y)
+	}
+	pad := vg.Points(10)
+	img := vgimg.NewWith(vgimg.UseWH(width+2*pad, height+keyH+2*pad), vgimg.UseDPI(pictureDPI), vgimg.UseBackgroundColor(color.White))
+	c := draw.New(img)
+	p.Draw(draw.Crop(c, pad, -pad, keyH+pad, -pad))
+	key.Draw(draw.Crop(c, pad, -pad, pad, -(height + pad)))
+	_, err := vgimg.PngCanvas{Canvas: img}.WriteTo(w)
+	return err
+}
+
+func style(p *plot.Plot) {
+	for _, s := range []*text.Style{&p.Title.TextStyle, &p.X.Label.TextStyle, &p.Y.Label.TextStyle, &p.X.Tick.Label, &p.Y.Tick.Label, &p.Legend.TextStyle} {
+		s.Font.Variant = "Sans"
+		s.Font.Size = vg.Points(10)
+	}
+	p.Title.TextStyle.Font.Size = vg.Points(12)
+	p.Title.Padding = vg.Points(6)
+	p.Legend.ThumbnailWidth = vg.Points(24)
+	p.Legend.Padding = vg.Points(3)
+}
+
+// title says what the picture shows.
+func (t *Track) title() string {
+	title := t.Drive
+	if n := len(t.Posteriors); n > 0 {
+		title += fmt.Sprintf(": located for %.0f %% of %d posteriors", 100*float64(t.count(summary.Located))/float64(n), n)
+	}
+	return title
+}
+
+func (t *Track) count(s summary.Status) (n int) {
+	for _, p := range t.Posteriors {
+		if p.Status == s {
+			n++
+		}
+	}
+	return n
+}
+
+// circle is a polygon of 48 corners: within 0.3 % of the radius.
+func circle(at geo.Point, radiusM float64) plotter.XYs {
+	xys := make(plotter.XYs, 48)
+	for i := range xys {
+		d := geo.Direction(2 * math.Pi * float64(i) / float64(len(xys)))
+		xys[i] = plotter.XY{X: at.E + radiusM*d.E, Y: at.N + radiusM*d.N}
+	}
+	return xys
+}
+
+// margin widens a box by a tenth, to at least 200 m and a third of its longer
+// side.
+func margin(b geo.Box) geo.Box {
+	wide, high := b.Max.E-b.Min.E, b.Max.N-b.Min.N
+	least := math.Max(200, math.Max(wide, high)/3)
+	grow := func(lo, hi float64) (float64, float64) {
+		extra := math.Max(0.1*(hi-lo), (least-(hi-lo))/2)
+		return lo - extra, hi + extra
+	}
+	b.Min.E, b.Max.E = grow(b.Min.E, b.Max.E)
+	b.Min.N, b.Max.N = grow(b.Min.N, b.Max.N)
+	return b
+}
+
+// clip returns a road's points if any part of it may be in the box.
+func clip(road []geo.Point, b geo.Box) plotter.XYs {
+	of := geo.EmptyBox()
+	for _, p := range road {
+		of = of.Extend(p)
+	}
+	if of.Min.E > b.Max.E || of.Max.E < b.Min.E || of.Min.N > b.Max.N || of.Max.N < b.Min.N {
+		return nil
+	}
+	xys := make(plotter.XYs, len(road))
+	for i, p := range road {
+		xys[i] = plotter.XY{X: p.E, Y: p.N}
+	}
+	return xys
+}
+
+// within keeps the points in a box.
+func within(xys plotter.XYs, b geo.Box) plotter.XYs {
+	var in plotter.XYs
+	for _, xy := range xys {
+		if b.Contains(geo.Point{E: xy.X, N: xy.Y}) {
+			in = append(in, xy)
+		}
+	}
+	return in
+}
+
+// relief paints heights in light greys, high is light, shaded from the
+// north-west; voids stay white.
+func relief(f geo.Field, b geo.Box) image.Image {
+	wide, high := b.Max.E-b.Min.E, b.Max.N-b.Min.N
+	cell := math.Max(wide, high) / reliefCells
+	w, h := max(1, int(wide/cell)), max(1, int(high/cell))
+	rows := make([]geo.Heights, h)
+	e, n := make([]float64, w), make([]float64, w)
+	lo, hi, steep := math.Inf(1), math.Inf(-1), 0.0
+	for y := range rows {
+		for x := range w {
+			e[x] = b.Min.E + (float64(x)+0.5)*wide/float64(w)
+			n[x] = b.Max.N - (float64(y)+0.5)*high/float64(h)
+		}
+		rows[y] = geo.Heights{HeightM: make([]float64, w), SlopeE: make([]float64, w), SlopeN: make([]float64, w)}
+		f.Sample(rows[y], e, n)
+		for x, m := range rows[y].HeightM {
+			if m == m {
+				lo, hi = math.Min(lo, m), math.Max(hi, m)
+				steep = math.Max(steep, math.Max(math.Abs(rows[y].SlopeE[x]), math.Abs(rows[y].SlopeN[x])))
+			}
+		}
+	}
+	img := image.NewRGBA(image.Rect(0, 0, w, h))
+	for y := range rows {
+		for x, m := range rows[y].HeightM {
+			v := 255.0
+			if m == m {
+				tone, shade := 0.5, 0.0
+				if hi > lo {
+					tone = (m - lo) / (hi - lo)
+				}
+				if steep > 0 {
+					shade = (rows[y].SlopeE[x] - rows[y].SlopeN[x]) / (2 * steep)
+				}
+				v = 170 + 55*tone + 25*shade
+			}
+			img.Set(x, y, color.Gray{Y: uint8(math.Max(0, math.Min(255, v)))})
+		}
+	}
+	return img
+}
