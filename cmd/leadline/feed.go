@@ -4,7 +4,9 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"io"
 	"math"
+	"net"
 	"sync/atomic"
 	"time"
 
@@ -50,6 +52,9 @@ func feed(c *cobra.Command, o *feedOptions, path string) error {
 	if !(o.speed >= 0) || math.IsInf(o.speed, 0) {
 		return fmt.Errorf("--speed is %v: give a positive number, or 0 for as fast as possible", o.speed)
 	}
+	if err := checkAddress("--to", o.to); err != nil {
+		return err
+	}
 	d, err := readDrive(path)
 	if err != nil {
 		return err
@@ -63,7 +68,7 @@ func feed(c *cobra.Command, o *feedOptions, path string) error {
 	if len(d.Events) == 0 {
 		return fmt.Errorf("%s: %w", path, replay.ErrNoMeasurements)
 	}
-	closed, refusal, err := o.send(c, d, driveName(path))
+	closed, refusal, err := o.send(c.ErrOrStderr(), d, driveName(path))
 	if err != nil {
 		return fmt.Errorf("%s: %w", path, serverError(err, o.to))
 	}
@@ -84,7 +89,7 @@ func feed(c *cobra.Command, o *feedOptions, path string) error {
 }
 
 // send carries a drive to the server, in the order of events.
-func (o *feedOptions) send(c *cobra.Command, d *drivefile.Drive, name string) (*leadlinev1.Closed, error, error) {
+func (o *feedOptions) send(errs io.Writer, d *drivefile.Drive, name string) (*leadlinev1.Closed, error, error) {
 	conn, err := client.Dial(o.to)
 	if err != nil {
 		return nil, nil, err
@@ -100,7 +105,7 @@ func (o *feedOptions) send(c *cobra.Command, d *drivefile.Drive, name string) (*
 	if err != nil {
 		return nil, nil, err
 	}
-	show, end := progress(c.ErrOrStderr(), name)
+	show, end := progress(errs, name)
 	defer end()
 	events := replay.Ordered(d.Events)
 	began := time.Now()
@@ -137,6 +142,14 @@ func refusalError(r *leadlinev1.Refusal) error {
 		return fmt.Errorf("a measurement without a time was refused: %s", r.GetDetail())
 	}
 	return replay.Refusal{Time: t, Sensor: r.GetSensor(), Number: r.GetNumber(), Reason: reasonText(r.GetReason()), Detail: r.GetDetail()}
+}
+
+// checkAddress wants HOST:PORT: without a port another one would be tried.
+func checkAddress(flag, address string) error {
+	if _, port, err := net.SplitHostPort(address); err != nil || port == "" {
+		return fmt.Errorf("%s %s is no address: give HOST:PORT, such as %s", flag, address, defaultAddress)
+	}
+	return nil
 }
 
 // serverError words what a call ended with: what the server said, or that it

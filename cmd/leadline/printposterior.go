@@ -38,9 +38,9 @@ func printPosterior(w io.Writer, p *leadlinev1.Posterior) {
 		return
 	}
 	line := func(label, format string, args ...any) {
-		fmt.Fprintf(w, "  %-12s %s\n", label, fmt.Sprintf(format, args...))
+		fmt.Fprintf(w, "  %-14s %s\n", label, fmt.Sprintf(format, args...))
 	}
-	fmt.Fprintf(w, "%s is %s at %s (%.0f s ago)\n", p.GetVehicle(), words(p.GetStatus().String(), "STATUS_"), p.GetTime().AsTime().Format(time.RFC3339Nano), p.GetAgeS())
+	fmt.Fprintf(w, "%s is %s at %s (%s)\n", p.GetVehicle(), words(p.GetStatus().String(), "STATUS_"), p.GetTime().AsTime().Format(time.RFC3339Nano), age(p.GetAgeS()))
 	r := p.GetRadii()
 	line("mean", "lon %.6f, lat %.6f; 50 %% within %.1f m, 95 %% within %.1f m, 99 %% within %.1f m",
 		p.GetMean().GetLon(), p.GetMean().GetLat(), r.GetRadius50M(), r.GetRadius95M(), r.GetRadius99M())
@@ -81,6 +81,21 @@ func printPosterior(w io.Writer, p *leadlinev1.Posterior) {
 	if p.GetGapS() > 0 {
 		line("gap", "nothing measured the motion for %.1f s", p.GetGapS())
 	}
+}
+
+// age words how old an answer is, by the server's clock.
+func age(s float64) string {
+	switch {
+	case s < 0:
+		return fmt.Sprintf("%.1f s ahead of the server's clock", -s)
+	case s < 120:
+		return fmt.Sprintf("%.1f s ago", s)
+	case s < 2*3600:
+		return fmt.Sprintf("%.0f minutes ago", s/60)
+	case s < 48*3600:
+		return fmt.Sprintf("%.0f hours ago", s/3600)
+	}
+	return fmt.Sprintf("%.0f days ago", s/86400)
 }
 
 func durability(p *leadlinev1.Posterior) string {

@@ -56,6 +56,9 @@ func where(c *cobra.Command, o *whereOptions, vehicle string) error {
 			return err
 		}
 	}
+	if err := checkAddress("--at", o.at); err != nil {
+		return err
+	}
 	conn, err := client.Dial(o.at)
 	if err != nil {
 		return fmt.Errorf("--at %s: %w", o.at, err)
@@ -74,15 +77,15 @@ func where(c *cobra.Command, o *whereOptions, vehicle string) error {
 	p := answer.GetPosterior()
 	printPosterior(w, p)
 	for _, r := range p.GetRegions() {
-		fmt.Fprintf(w, "  %-12s %.4g %% within %.0f m² in %d pieces (polygons with --json)\n", "region", 100*r.GetProbability(), r.GetAreaM2(), len(r.GetPolygons()))
+		fmt.Fprintf(w, "  %-14s %.4g %% within %.0f m² in %d pieces (polygons with --json)\n", "region", 100*r.GetProbability(), r.GetAreaM2(), len(r.GetPolygons()))
 	}
 	if p.AreaProbability != nil {
-		fmt.Fprintf(w, "  %-12s %.4g %% inside %s\n", "area", 100*p.GetAreaProbability(), o.area)
+		fmt.Fprintf(w, "  %-14s %.4g %% inside %s\n", "area", 100*p.GetAreaProbability(), o.area)
 	}
 	state := "goes on"
 	if answer.GetEnded() {
 		state = "has ended"
 	}
-	fmt.Fprintf(w, "  %-12s %s, %s; sha256 of what is final %s\n", "drive", state, strings.ToLower(durability(p)), answer.GetPosteriorSha256())
+	fmt.Fprintf(w, "  %-14s %s, %s; sha256 of what is final %s\n", "drive", state, strings.ToLower(durability(p)), answer.GetPosteriorSha256())
 	return nil
 }

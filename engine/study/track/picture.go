@@ -177,12 +177,12 @@ func (t *Track) Picture(w io.Writer, g Ground) error {
 	for _, e := range legend {
 		p.Legend.Add(e.name, e.of)
 	}
-	return save(w, p, wide, high)
+	return save(w, p, wide, high, len(legend))
 }
 
 // save draws the plot so that its data area has the map's shape, with the
-// legend below the title.
-func save(w io.Writer, p *plot.Plot, wide, high float64) error {
+// legend of so many entries below it.
+func save(w io.Writer, p *plot.Plot, wide, high float64, entries int) error {
 	wantW := pictureSide * vg.Length(wide/math.Max(wide, high))
 	wantH := pictureSide * vg.Length(high/math.Max(wide, high))
 	key := p.Legend
@@ -190,7 +190,7 @@ func save(w io.Writer, p *plot.Plot, wide, high float64) error {
 	p.Legend.TextStyle = key.TextStyle
 	key.Left, key.Top = true, true
 	key.XOffs, key.YOffs = vg.Points(12), -vg.Points(4)
-	keyH := vg.Points(86)
+	keyH := vg.Points(15 * float64(entries))
 	width, height := wantW+vg.Inch, wantH+vg.Inch
 	for range 3 {
 		d := p.DataCanvas(draw.NewCanvas(vgimg.New(width, height), width, height))
@@ -221,7 +221,7 @@ func style(p *plot.Plot) {
 func (t *Track) title() string {
 	title := t.Drive
 	if n := len(t.Posteriors); n > 0 {
-		title += fmt.Sprintf(": located for %.0f %% of %d posteriors", 100*float64(t.count(summary.Located))/float64(n), n)
+		title += fmt.Sprintf(": located in %d of %d posteriors", t.count(summary.Located), n)
 	}
 	return title
 }
