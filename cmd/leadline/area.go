@@ -18,6 +18,9 @@ const maxAreaBytes = 1 << 20
 
 // readArea reads a polygon from a GeoJSON file.
 func readArea(path string) (*leadlinev1.Polygon, error) {
+	if err := exists(path); err != nil {
+		return nil, fmt.Errorf("--area: %w", err)
+	}
 	f, err := os.Open(path)
 	if err != nil {
 		return nil, fmt.Errorf("--area: %w", err)

@@ -70,7 +70,7 @@ func feed(c *cobra.Command, o *feedOptions, path string) error {
 	}
 	closed, refusal, err := o.send(c.ErrOrStderr(), d, driveName(path))
 	if err != nil {
-		return fmt.Errorf("%s: %w", path, serverError(err, o.to))
+		return fmt.Errorf("%s: %w", path, o.failed(err))
 	}
 	if o.asJSON {
 		if err := printMessage(c.OutOrStdout(), closed); err != nil {
@@ -82,7 +82,7 @@ func feed(c *cobra.Command, o *feedOptions, path string) error {
 		printPosterior(c.OutOrStdout(), closed.GetPosterior())
 	}
 	if n := closed.GetRefused(); n > 0 && !o.allowRefused {
-		return fmt.Errorf("%s: %d of %d measurements were refused; %w; with --allow-refused this is no error",
+		return fmt.Errorf("%s: %d of %d measurements were refused, first %w; with --allow-refused this is no error",
 			path, n, n+closed.GetAccepted(), refusal)
 	}
 	return nil
@@ -135,6 +135,15 @@ func (o *feedOptions) send(errs io.Writer, d *drivefile.Drive, name string) (*le
 	return closed, refusal, err
 }
 
+// failed words why a feed ended before its drive did.
+func (o *feedOptions) failed(err error) error {
+	worded := serverError(err, o.to)
+	if status.Code(err) == codes.Unavailable {
+		return fmt.Errorf("%w the drive was not fed to its end: feed it again", worded)
+	}
+	return worded
+}
+
 // refusalError words a refusal as replay does.
 func refusalError(r *leadlinev1.Refusal) error {
 	t, err := wire.Time(r.GetTime())
@@ -161,7 +170,7 @@ func serverError(err error, address string) error {
 	}
 	switch st.Code() {
 	case codes.Unavailable:
-		return fmt.Errorf("no answer from the server at %s (%s): is it running there? what was not acknowledged must be sent again", address, oneLine(st.Message()))
+		return fmt.Errorf("no answer from the server at %s (%s): is it running there?", address, oneLine(st.Message()))
 	case codes.Unimplemented:
 		return fmt.Errorf("the server at %s does not do that (%s): is it a Leadline server of this version?", address, oneLine(st.Message()))
 	}

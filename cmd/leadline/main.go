@@ -34,9 +34,12 @@ func run(args []string, out, errs io.Writer) int {
 	root.SetArgs(args)
 	root.SetOut(out)
 	root.SetErr(errs)
-	err := root.Execute()
+	c, err := root.ExecuteC()
 	if err == nil {
 		return exitDone
+	}
+	if strings.HasPrefix(err.Error(), "required flag(s)") { // cobra's own, which says no more
+		err = fmt.Errorf("%w; see `%s --help`", err, c.CommandPath())
 	}
 	fmt.Fprintln(errs, "leadline: "+oneLine(err.Error()))
 	var f failure

@@ -86,7 +86,7 @@ func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
 			return err
 		}
 		if n := run.result.Refused; n > 0 && refused == nil && !o.allowRefused {
-			refused = fmt.Errorf("%s: %d of %d measurements were refused; %w; with --allow-refused this is no error",
+			refused = fmt.Errorf("%s: %d of %d measurements were refused, first %w; with --allow-refused this is no error",
 				path, n, n+run.result.Accepted, run.result.Refusals[0])
 		}
 	}

@@ -28,7 +28,7 @@ type Refusal struct {
 
 // Error names the measurement and says what was wrong with it.
 func (r Refusal) Error() string {
-	return fmt.Sprintf("the measurement at %s (sensor %q, number %d) was refused: %s: %s",
+	return fmt.Sprintf("the measurement at %s (sensor %q, number %d): %s: %s",
 		time.Unix(0, int64(r.Time)).UTC().Format(time.RFC3339Nano), r.Sensor, r.Number, r.Reason, r.Detail)
 }
 

@@ -1,0 +1,202 @@
+package track
+
+import (
+	"bytes"
+	"encoding/csv"
+	"encoding/json"
+	"image/color"
+	"image/png"
+	"math"
+	"strconv"
+	"strings"
+	"testing"
+
+	"leadline/engine/geo"
+	"leadline/engine/study/score"
+	"leadline/engine/summary"
+)
+
+var frame = geo.NewFrame(geo.FromDegrees(-30, 45)) // in the open Atlantic
+
+// walk is five posteriors, the first two not located, 100 m apart going east,
+// the truth 3 m north of the means.
+func walk() *Track {
+	t := &Track{Drive: "walk"}
+	for i := range 5 {
+		p := geo.Point{E: 100 * float64(i)}
+		q := &summary.Posterior{
+			TimeNS: int64(i) * 1e9, Status: summary.Located, MeanFrame: p, Mean: frame.Inverse(p),
+			Cov: summary.Cov{EE: 4, EN: 1, NN: 2}, Radius50M: 5, Radius95M: 20, Radius99M: 30,
+			MostProbable: summary.Cell{Position: frame.Inverse(p.Add(geo.Point{N: 40}))},
+			LogEvidence:  -float64(i),
+		}
+		if i < 2 {
+			q.Status = summary.Ambiguous
+		}
+		if i == 4 {
+			q.Protection = summary.Protection{Bounded: true, RadiusM: 50}
+			q.Heading = summary.Direction{Known: true, TrueRad: math.Pi / 2, SigmaRad: 0.1}
+			q.Edges = []summary.Edge{{Chart: 7, Name: `Quay "A", east`, Probability: 0.75}}
+		}
+		t.Posteriors = append(t.Posteriors, q)
+		t.Truth = append(t.Truth, score.Truth{TimeNS: q.TimeNS, At: frame.Inverse(p.Add(geo.Point{N: 3}))})
+	}
+	t.Truth = t.Truth[:4] // of the last nothing is known
+	return t
+}
+
+// TestCSV reads the table back.
+func TestCSV(t *testing.T) {
+	var b bytes.Buffer
+	if err := walk().WriteCSV(&b); err != nil {
+		t.Fatal(err)
+	}
+	rows, err := csv.NewReader(&b).ReadAll()
+	if err != nil || len(rows) != 6 {
+		t.Fatalf("%v, %d rows", err, len(rows))
+	}
+	cell := func(row int, column string) string {
+		for i, name := range rows[0] {
+			if name == column {
+				return rows[row+1][i]
+			}
+		}
+		t.Fatalf("no column %s", column)
+		return ""
+	}
+	number := func(row int, column string, want, tol float64) {
+		t.Helper()
+		if got, err := strconv.ParseFloat(cell(row, column), 64); err != nil || math.Abs(got-want) > tol {
+			t.Errorf("row %d, %s: %q, want %v", row, column, cell(row, column), want)
+		}
+	}
+	// Vincenty is good to 1 mm.
+	number(0, "error_m", 37, 2e-3) // the most probable cell is 40 m north
+	number(2, "error_m", 3, 2e-3)  // the mean
+	number(2, "cov_en_m2", 1, 0)
+	number(2, "log_evidence", -2, 0)
+	number(4, "protection_m", 50, 0)
+	number(4, "heading_deg", 90, 1e-9)
+	number(4, "probability", 0.75, 0)
+	number(0, "mean_lon_deg", -30, 1e-8)
+	for _, empty := range []string{"truth_lon_deg", "error_m", "speed_mps"} {
+		if got := cell(4, empty); got != "" {
+			t.Errorf("%s is %q where it is not known", empty, got)
+		}
+	}
+	if cell(0, "protection_m") != "" || cell(0, "road") != "" || cell(0, "status") != "ambiguous" ||
+		cell(1, "time") != "1970-01-01T00:00:01Z" || cell(4, "road") != `Quay "A", east` {
+		t.Errorf("%q", rows)
+	}
+}
+
+// TestGeoJSON parses it: a line of truth, one for each status, and the points.
+func TestGeoJSON(t *testing.T) {
+	var b bytes.Buffer
+	if err := walk().WriteGeoJSON(&b); err != nil {
+		t.Fatal(err)
+	}
+	var c struct {
+		Type     string
+		Features []struct {
+			Type       string
+			Properties map[string]any
+			Geometry   struct {
+				Type        string
+				Coordinates json.RawMessage
+			}
+		}
+	}
+	if err := json.Unmarshal(b.Bytes(), &c); err != nil {
+		t.Fatal(err)
+	}
+	var got []string
+	for _, f := range c.Features {
+		got = append(got, f.Geometry.Type)
+	}
+	if want := "LineString LineString LineString Point Point Point Point Point"; c.Type != "FeatureCollection" || strings.Join(got, " ") != want {
+		t.Errorf("%s of %v", c.Type, got)
+	}
+	if f := c.Features[2]; f.Properties["status"] != "located" {
+		t.Errorf("%v", f.Properties)
+	}
+	var at [2]float64
+	if err := json.Unmarshal(c.Features[3].Geometry.Coordinates, &at); err != nil || math.Abs(at[0]+30) > 1e-8 || math.Abs(at[1]-45) > 0.001 {
+		t.Errorf("%v, %v", at, err)
+	}
+	if err := (&Track{}).WriteGeoJSON(&b); err != nil {
+		t.Error(err)
+	}
+}
+
+// slope is ground that rises to the east, with a void in the west.
+type slope struct{}
+
+func (slope) Frame() geo.Frame { return frame }
+
+func (slope) Bounds() geo.Box {
+	return geo.Box{Min: geo.Point{E: -1e4, N: -1e4}, Max: geo.Point{E: 1e4, N: 1e4}}
+}
+
+func (slope) Sample(dst geo.Heights, e, _ []float64) {
+	for i := range e {
+		dst.HeightM[i], dst.SlopeE[i], dst.SlopeN[i] = 0.1*e[i], 0.1, 0
+		if e[i] < 0 {
+			dst.HeightM[i], dst.SlopeE[i] = math.NaN(), 0
+		}
+	}
+}
+
+// TestPicture counts the pixels of each colour.
+func TestPicture(t *testing.T) {
+	draw := func(tr *Track, g Ground) map[color.RGBA]int {
+		t.Helper()
+		var b bytes.Buffer
+		if err := tr.Picture(&b, g); err != nil {
+			t.Fatal(err)
+		}
+		img, err := png.Decode(&b)
+		if err != nil {
+			t.Fatal(err)
+		}
+		n := map[color.RGBA]int{}
+		r := img.Bounds()
+		if r.Dx() < 400 || r.Dy() < 400 || r.Dx() > 2000 || r.Dy() > 2000 {
+			t.Errorf("the picture has %v", r)
+		}
+		for y := r.Min.Y; y < r.Max.Y; y++ {
+			for x := r.Min.X; x < r.Max.X; x++ {
+				n[color.RGBAModel.Convert(img.At(x, y)).(color.RGBA)]++
+			}
+		}
+		return n
+	}
+	roads := Ground{Frame: frame, Roads: [][]geo.Point{{{E: -50}, {E: 500}}, {{E: 5e4}, {E: 6e4}}}}
+	n := draw(walk(), roads)
+	for name, c := range map[string]color.RGBA{"roads": roadColour, "truth": truthColour, "mean": meanColour, "searching": searchColour} {
+		if n[c] < 20 {
+			t.Errorf("%d pixels of %s", n[c], name)
+		}
+	}
+	// Grey also comes from the edges of letters.
+	if without := draw(walk(), Ground{Frame: frame}); without[roadColour] > n[roadColour]/2 {
+		t.Errorf("%d pixels of roads without roads, %d with them", without[roadColour], n[roadColour])
+	}
+	greys := 0
+	for c := range draw(walk(), Ground{Frame: frame, Relief: slope{}}) {
+		if c.R == c.G && c.G == c.B && c.R > 150 && c.R < 250 {
+			greys++
+		}
+	}
+	if greys < 20 {
+		t.Errorf("a slope in %d greys", greys)
+	}
+	never := walk()
+	never.Posteriors, never.Truth = never.Posteriors[:2], nil
+	if n := draw(never, roads); n[searchColour] < 10 || n[meanColour]+n[truthColour] > 0 {
+		t.Errorf("a drive never located and without truth: %d pixels of searching, %d of the mean, %d of the truth", n[searchColour], n[meanColour], n[truthColour])
+	}
+	if err := (&Track{}).Picture(&bytes.Buffer{}, roads); err == nil {
+		t.Error("a picture of nothing")
+	}
+}
