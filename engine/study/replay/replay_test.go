@@ -24,7 +24,7 @@ const second = sensor.Time(1e9)
 // from the second one on, and a fix five times a second, east at 10 m/s.
 func drive(seconds int) *drivefile.Drive {
 	frame := geo.NewFrame(origin)
-	d := &drivefile.Drive{Header: drivefile.Header{Vehicle: "boat", Start: drivefile.Start{Point: origin, SigmaM: 50}}}
+	d := &drivefile.Drive{Header: drivefile.Header{Vehicle: "boat", Start: drivefile.Start{Point: origin, SigmaM: 10}}}
 	for k := range seconds * 5 {
 		t := sensor.Time(k+1) * second / 5
 		at := frame.Inverse(geo.Point{E: 10 * float64(t) / 1e9})
@@ -45,7 +45,7 @@ func config(t *testing.T, suite string) session.Config {
 	if err != nil {
 		t.Fatal(err)
 	}
-	return session.Config{Space: plane.Open(origin, 20e3, 100), Suite: s, MaxCells: 5000}
+	return session.Config{Space: plane.Open(origin, 20e3, 100), Suite: s, MaxCells: 3000}
 }
 
 // hashOf is the hash of the posteriors of a result.

@@ -152,11 +152,12 @@ type feature struct {
 // each posterior with time, status and 95 % radius.
 func (t *Track) WriteGeoJSON(w io.Writer) error {
 	b := bufio.NewWriter(w)
-	b.WriteString(`{"type":"FeatureCollection","features":[`)
+	// Errors of the buffer come back from Flush.
+	_, _ = b.WriteString(`{"type":"FeatureCollection","features":[`)
 	enc, first := json.NewEncoder(b), true
 	put := func(kind string, coords any, properties map[string]any) error {
 		if !first {
-			b.WriteByte(',')
+			_ = b.WriteByte(',')
 		}
 		first = false
 		return enc.Encode(feature{"Feature", properties, geometry{kind, coords}})
@@ -189,6 +190,6 @@ func (t *Track) WriteGeoJSON(w io.Writer) error {
 			return err
 		}
 	}
-	b.WriteString("]}\n")
+	_, _ = b.WriteString("]}\n")
 	return b.Flush()
 }
