@@ -98,7 +98,8 @@ func TestRoadStep(t *testing.T) {
 	if fmt.Sprint(st.F) != fmt.Sprint(wantF) {
 		t.Errorf("F %v, want %v", st.F, wantF)
 	}
-	q := []float64{0.02, 0, 0.0004 + 2*qs[1].DriftVar, 0, 0, 2 * qs[2].DriftVar}
+	// The map's stretch over 10 m, and the corner: 0.3 rad less twice 0.02.
+	q := []float64{0.02 + 0.15*0.15*10 + 2*2*0.26/(math.Pi/2), 0, 0.0004 + 2*qs[1].DriftVar, 0, 0, 2 * qs[2].DriftVar}
 	for i := range q {
 		if !near(st.Q[i], q[i], 1e-15) {
 			t.Errorf("Q %v, want %v", st.Q, q)
@@ -117,7 +118,7 @@ func TestSensorsAreCombined(t *testing.T) {
 	qs := s.Quantities(1)
 	a, b := event(second, "a", Travel{0, 10, 0.1}), event(second, "b", Travel{0, 11, 0.2})
 	st, _ := step(t, s, second, qs, 1, Pose{}, a, b)
-	if !near(st.Add[0], (10*4+11)/5.0, 1e-12) || !near(st.Q[0], 1/(1/0.01+1/0.04), 1e-14) {
+	if !near(st.Add[0], (10*4+11)/5.0, 1e-12) || !near(st.Q[0], 1/(1/0.01+1/0.04)+0.15*0.15*st.Add[0], 1e-14) {
 		t.Errorf("add %v, Q %v", st.Add[0], st.Q[0])
 	}
 	st2, _ := step(t, s, second, qs, 1, Pose{}, b, a)
@@ -129,7 +130,7 @@ func TestSensorsAreCombined(t *testing.T) {
 	m.Reset(0, second)
 	m.Add(event(second, "log", Speed{MPS: 10, SigmaMPS: 0.1}), 0)
 	sp, err := m.Step(qs, 1, newWorld().frame, Pose{})
-	if err != nil || sp.F != nil || !near(sp.Add[0], 10, 1e-12) || !near(sp.Q[0], 0.01, 1e-12) {
+	if err != nil || sp.F != nil || !near(sp.Add[0], 10, 1e-12) || !near(sp.Q[0], 0.01+0.15*0.15*10, 1e-12) {
 		t.Errorf("%+v %v", sp, err)
 	}
 	// The first speed covers nothing.

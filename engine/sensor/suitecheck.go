@@ -71,10 +71,12 @@ func (s *Suite) problems() []finding {
 	var f findings
 	v := s.Vehicle
 	f.unless0("vehicle.alert_limit_m", v.AlertLimitM, 0.01, 1e6)
-	f.unless0("vehicle.integrity_risk", v.IntegrityRisk, 1e-12, 0.1)
+	f.unless0("vehicle.integrity_risk", v.IntegrityRisk, 1e-12, 0.01)
 	f.unless0("vehicle.late_window_s", v.LateWindowS, 1e-3, 3600)
 	f.unless0("vehicle.hold_s", v.HoldS, 1e-3, 3600)
 	f.unless0("vehicle.lateral_sigma_m", v.LateralSigmaM, 1e-3, 100)
+	f.unless0("vehicle.stretch_m_per_sqrt_m", v.StretchMPerSqrtM, 1e-6, 100)
+	f.unless0("vehicle.corner_sigma_m", v.CornerSigmaM, 1e-6, 100)
 	f.unless0("vehicle.max_speed_mps", v.MaxSpeedMPS, 0.01, 1e4)
 	f.unless0("vehicle.max_accel_mps2", v.MaxAccelMPS2, 1e-3, 1e3)
 	f.unless0("vehicle.max_turn_dps", v.MaxTurnDPS, 1e-3, 1e4)

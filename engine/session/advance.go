@@ -28,6 +28,11 @@ type state struct {
 	velocity    [2]float64
 	speed       summary.Speed
 	odometerM   float64 // distance measured since the start
+	// Since the last posterior: evidence (at most maxEvidence), gaps, and when
+	// that was.
+	evidence    []summary.Evidence
+	gapS        float64
+	posteriorAt sensor.Time
 	// previous holds the last processed event of each sensor, by name.
 	previous          []lastEvent
 	accepted, refused uint64
@@ -43,6 +48,7 @@ func (st *state) clone() state {
 	c := *st
 	c.belief = st.belief.Clone()
 	c.previous = slices.Clone(st.previous)
+	c.evidence = slices.Clone(st.evidence)
 	return c
 }
 
@@ -89,15 +95,64 @@ func (s *Session) run(flush bool) []*summary.Posterior {
 		if !flush && !s.log.covered(t, hold) {
 			return out
 		}
-		end := s.log.next + 1
-		for end < len(s.log.events) && s.log.events[end].Time == t {
-			end++
+		end, motionOnly := s.log.group(s.log.next)
+		for stride := s.stride(); motionOnly && t.Seconds(s.state.time) < stride; {
+			if end == len(s.log.events) {
+				if flush {
+					break
+				}
+				return out
+			}
+			next := s.log.events[end].Time
+			if !flush && !s.log.covered(next, hold) {
+				return out
+			}
+			t = next
+			end, motionOnly = s.log.group(end)
 		}
-		if p := s.step(t, end); s.release(p) {
+		if p := s.step(t, end, flush && end == len(s.log.events)); p != nil && s.release(p) {
 			out = append(out, p)
 		}
 	}
 	return out
+}
+
+// A wide belief is one that nobody reads in detail: it costs much and says
+// little. Above wideSize cells or Gaussians, times at which nothing but motion
+// came are passed over until the vehicle has moved strideShare of a cell, at
+// most maxStrideS; posteriors come at most every widePosteriorS, above
+// hugeSize every hugePosteriorS. All of it follows from the events alone.
+const (
+	wideSize       = 4_000
+	hugeSize       = 20_000
+	strideShare    = 0.25
+	maxStrideS     = 1.0
+	widePosteriorS = 1.0
+	hugePosteriorS = 5.0
+)
+
+// stride is for how long, in seconds, motion may be gathered into one step.
+func (s *Session) stride() float64 {
+	if s.lines == nil || s.state.belief.Cells() < wideSize {
+		return 0
+	}
+	v := math.Abs(s.state.speed.MPS)
+	if !s.state.speed.Known {
+		return 0
+	}
+	return math.Min(maxStrideS, strideShare*s.cellM()/math.Max(v, 1))
+}
+
+// silent reports whether the posterior at t is passed over.
+func (s *Session) silent(t sensor.Time) bool {
+	since := t.Seconds(s.state.posteriorAt)
+	switch n := s.state.belief.Cells(); {
+	case n > hugeSize:
+		return since < hugePosteriorS
+	case n > wideSize:
+		return since < widePosteriorS
+	}
+	return false
 }
 
 // begin sets the start time: that of the first event, or of the beginning of
@@ -115,10 +170,10 @@ func (s *Session) begin() {
 }
 
 // step moves the belief to t, weighs it by the events up to index end, and
-// makes the posterior.
-func (s *Session) step(t sensor.Time, end int) *summary.Posterior {
+// makes the posterior: nil if it is passed over, which the last one never is.
+func (s *Session) step(t sensor.Time, end int, last bool) *summary.Posterior {
 	st := &s.state
-	var evidence []summary.Evidence
+	evidence := st.evidence
 	weigh := func(ev sensor.Event, kind string, l any) {
 		e, err := filter.UpdateWithin(st.belief, s.space, l, s.maxCells, &s.work)
 		if errors.Is(err, filter.ErrContradiction) {
@@ -130,12 +185,14 @@ func (s *Session) step(t sensor.Time, end int) *summary.Posterior {
 			evidence[n-1].LogEvidence += e
 			return
 		}
+		if len(evidence) == maxEvidence {
+			evidence = slices.Delete(evidence, 0, 1)
+		}
 		evidence = append(evidence, summary.Evidence{Sensor: ev.Sensor, Number: ev.Number, Kind: kind, LogEvidence: e})
 	}
-	gapS := 0.0
 	if t > st.time {
 		travelled := s.move(t)
-		gapS = s.motion.GapS()
+		st.gapS += s.motion.GapS()
 		if l := s.followsRoad(travelled); l != nil {
 			weigh(sensor.Event{Sensor: roadSensor}, sensor.KindTurn, l)
 		}
@@ -157,7 +214,11 @@ func (s *Session) step(t sensor.Time, end int) *summary.Posterior {
 	s.log.next = end
 	st.time = t
 	s.adapt()
-	p := s.summarise(evidence, gapS)
+	var p *summary.Posterior
+	if st.evidence = evidence; last || !s.silent(t) {
+		p = s.summarise()
+		st.evidence, st.gapS, st.posteriorAt = nil, 0, t
+	}
 	s.snapshot()
 	return p
 }
@@ -174,6 +235,10 @@ func (s *Session) followsRoad(travelledM float64) filter.LinearLikelihood {
 	l, _ := sensor.RoadAlignment(s.state.belief.Quantities, travelledM)
 	return l
 }
+
+// maxEvidence bounds the single evidences that a posterior lists; the running
+// sum has them all.
+const maxEvidence = 64
 
 // roadSensor names the comparison of the vehicle's heading with the road's in
 // a posterior's evidence.
@@ -280,14 +345,14 @@ func (s *Session) adapt() {
 
 // summarise makes the posterior of the present state and takes the pose from
 // it.
-func (s *Session) summarise(evidence []summary.Evidence, gapS float64) *summary.Posterior {
+func (s *Session) summarise() *summary.Posterior {
 	st := &s.state
 	b := st.belief
 	b.Read(&s.cloud, s.space, &s.work)
 	p := &summary.Posterior{}
 	in := summary.Input{
 		TimeNS: int64(st.time), Frame: s.space.Frame(), Belief: b, Cloud: &s.cloud,
-		Speed: st.speed, Evidence: evidence, LogEvidence: st.logEvidence,
+		Speed: st.speed, Evidence: st.evidence, LogEvidence: st.logEvidence,
 		Accepted: st.accepted, Refused: s.refused,
 	}
 	if s.lines != nil {
@@ -300,7 +365,7 @@ func (s *Session) summarise(evidence []summary.Evidence, gapS float64) *summary.
 	if err != nil {
 		panic(fmt.Sprintf("session: %v", err)) // a belief is never empty
 	}
-	p.GapS = gapS
+	p.GapS = st.gapS
 	st.pose = sensor.Pose{At: p.MeanFrame, HeadingVar: sensor.NoHeading}
 	if p.Heading.Known {
 		g, _ := s.space.Frame().Convergence(p.MeanFrame)

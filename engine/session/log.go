@@ -84,3 +84,13 @@ func (l *log) drop(before sensor.Time) {
 		l.next -= n
 	}
 }
+
+// group returns the end of the events that have the time of event i, and
+// whether all of them are motion.
+func (l *log) group(i int) (end int, motionOnly bool) {
+	motionOnly = true
+	for end = i; end < len(l.events) && l.events[end].Time == l.events[i].Time; end++ {
+		motionOnly = motionOnly && sensor.IsMotion(l.events[end].Measurement.Kind())
+	}
+	return end, motionOnly
+}

@@ -194,3 +194,6 @@ func (s *Session) CellM() float64 { return s.cellM() }
 
 // ReadBelief spells out the present belief.
 func (s *Session) ReadBelief(dst *filter.Cloud) { s.state.belief.Read(dst, s.space, &s.work) }
+
+// Size is the number of cells or Gaussians that the belief holds now.
+func (s *Session) Size() int { return s.state.belief.Cells() }
