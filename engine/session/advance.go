@@ -143,8 +143,13 @@ func (s *Session) stride() float64 {
 	return math.Min(maxStrideS, strideShare*s.cellM()/math.Max(v, 1))
 }
 
-// silent reports whether the posterior at t is passed over.
+// silent reports whether the posterior at t is passed over. A lattice is
+// cheaper to read than roads, and is fine where it is located: it is never
+// wide.
 func (s *Session) silent(t sensor.Time) bool {
+	if s.lines == nil {
+		return false
+	}
 	since := t.Seconds(s.state.posteriorAt)
 	switch n := s.state.belief.Cells(); {
 	case n > hugeSize:
