@@ -32,6 +32,7 @@ type demoOptions struct {
 	dir, roads string
 	town       string // name of the road map
 	seed       uint64
+	turns      int
 }
 
 func demoCommand() *cobra.Command {
@@ -52,6 +53,7 @@ It needs Go, for the module, or --roads.`,
 	f.StringVar(&o.dir, "dir", "", "folder for maps, drives and pictures (default: a new one in the system's folder for temporary files)")
 	f.StringVar(&o.roads, "roads", "", "GeoJSON or OpenStreetMap file to use instead of Andorra's, where Go is not installed")
 	f.Uint64Var(&o.seed, "seed", 1, "seed of the invented drive and flight")
+	f.IntVar(&o.turns, "turns", 12, "turns of 45° or more that the drive has")
 	return c
 }
 
@@ -62,6 +64,9 @@ const (
 )
 
 func demo(c *cobra.Command, o *demoOptions) error {
+	if !(o.turns >= 1 && o.turns <= 200) {
+		return fmt.Errorf("--turns is %d: give 1 to 200", o.turns)
+	}
 	if o.dir == "" {
 		dir, err := os.MkdirTemp("", "leadline-demo-")
 		if err != nil {
@@ -156,8 +161,7 @@ func (o *demoOptions) drive(w io.Writer, m *mapFile) error {
 	if err != nil {
 		return err
 	}
-	const turns = 12
-	d, err := sim.Course(world, o.seed, turns)
+	d, err := sim.Course(world, o.seed, o.turns)
 	if err != nil {
 		return err
 	}
@@ -276,7 +280,7 @@ func (o *demoOptions) fly(w, errs io.Writer) error {
 		return err
 	}
 	fo := sim.StandardFlight()
-	fo.StartSigmaM, fo.MarginM, fo.DurationS = demoStartSigmaM, 3*demoStartSigmaM, 300
+	fo.StartSigmaM, fo.MarginM, fo.DurationS = demoStartSigmaM, 3*demoStartSigmaM, 180
 	d, err := sim.Flight(o.seed, relief, fo)
 	if err != nil {
 		return err
