@@ -198,7 +198,7 @@ func TestHeightsEndToEnd(t *testing.T) {
 func TestDemo(t *testing.T) {
 	t.Parallel()
 	dir := t.TempDir()
-	text := good(t, "demo", "--dir", dir, "--turns", "4", "--roads", townJSON(t, filepath.Join(dir, "harbour.json")))
+	text := good(t, "demo", "--dir", dir, "--turns", "4", "--roads", townJSON(t, filepath.Join(dir, "harbour.json"), 5, 4))
 	for _, want := range []string{"INVENTED", "bit for bit", "not certified", "van-7 is ", "leadline serve --map harbour="} {
 		if !strings.Contains(text, want) {
 			t.Errorf("the demo does not say %q:\n%s", want, text)

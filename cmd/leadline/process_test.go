@@ -194,10 +194,10 @@ func readJSON(t *testing.T, text string, to any) {
 }
 
 // townJSON writes an invented town as GeoJSON.
-func townJSON(t *testing.T, path string) string {
+func townJSON(t *testing.T, path string, columns, rows int) string {
 	t.Helper()
 	frame := geo.NewFrame(geo.FromDegrees(-30, 45)) // in the open Atlantic
-	town, err := sim.Town(3, frame, 8, 7)
+	town, err := sim.Town(3, frame, columns, rows)
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -286,6 +286,6 @@ func carDrive(t *testing.T, mapPath, path string, seconds float64) string {
 func compiledTown(t *testing.T, dir string, seconds float64) (mapPath, drivePath string) {
 	t.Helper()
 	mapPath = filepath.Join(dir, "town.roads.arrow")
-	good(t, "map", "roads", townJSON(t, filepath.Join(dir, "town.json")), "-o", mapPath)
+	good(t, "map", "roads", townJSON(t, filepath.Join(dir, "town.json"), 8, 7), "-o", mapPath)
 	return mapPath, carDrive(t, mapPath, filepath.Join(dir, "morning"+drivefile.Suffix), seconds)
 }
