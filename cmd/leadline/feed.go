@@ -123,7 +123,7 @@ func (o *feedOptions) send(errs io.Writer, d *drivefile.Drive, name string) (*le
 			f.Abort()
 			return nil, nil, err
 		}
-		if show != nil && i%256 == 0 {
+		if show != nil && i%32 == 0 {
 			show(i, len(events))
 		}
 	}

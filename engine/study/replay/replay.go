@@ -112,7 +112,7 @@ func Run(d *drivefile.Drive, c session.Config, o Options) (*Result, error) {
 		now := time.Now()
 		took = append(took, now.Sub(last).Seconds()*1e3)
 		last = now
-		if o.Progress != nil && (i+1)%256 == 0 {
+		if o.Progress != nil && (i+1)%32 == 0 {
 			o.Progress(i+1, len(events))
 		}
 	}
