@@ -280,7 +280,7 @@ func (o *demoOptions) fly(w, errs io.Writer) error {
 		return err
 	}
 	fo := sim.StandardFlight()
-	fo.StartSigmaM, fo.MarginM, fo.DurationS = demoStartSigmaM, 3*demoStartSigmaM, 180
+	fo.StartSigmaM, fo.MarginM, fo.DurationS = demoStartSigmaM, 3*demoStartSigmaM, 300
 	d, err := sim.Flight(o.seed, relief, fo)
 	if err != nil {
 		return err

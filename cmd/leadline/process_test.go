@@ -22,26 +22,28 @@ import (
 	"leadline/fixtures/sim"
 )
 
-// binary is the command, built as `go build` does: without the race detector,
-// which makes filtering twenty times slower and has tests of its own in the
-// packages that start goroutines.
-var binary string
+// binary builds the command when it is first needed, as `go build` does:
+// without the race detector, which makes filtering twenty times slower and has
+// tests of its own in the packages that start goroutines.
+var binary = sync.OnceValue(func() string {
+	path := filepath.Join(buildDir, "leadline")
+	if out, err := exec.Command("go", "build", "-buildvcs=false", "-o", path, ".").CombinedOutput(); err != nil {
+		panic(fmt.Sprintf("go build: %v\n%s", err, out))
+	}
+	return path
+})
 
-func TestMain(m *testing.M) { os.Exit(build(m)) }
+var buildDir string
 
-func build(m *testing.M) int {
-	dir, err := os.MkdirTemp("", "leadline-test-")
-	if err != nil {
+func TestMain(m *testing.M) {
+	var err error
+	if buildDir, err = os.MkdirTemp("", "leadline-test-"); err != nil {
 		fmt.Fprintln(os.Stderr, err)
-		return 1
+		os.Exit(1)
 	}
-	defer os.RemoveAll(dir)
-	binary = filepath.Join(dir, "leadline")
-	if out, err := exec.Command("go", "build", "-buildvcs=false", "-o", binary, ".").CombinedOutput(); err != nil {
-		fmt.Fprintf(os.Stderr, "go build: %v\n%s", err, out)
-		return 1
-	}
-	return m.Run()
+	status := m.Run()
+	_ = os.RemoveAll(buildDir)
+	os.Exit(status)
 }
 
 // patience is how long any command may take before it is taken to hang: the
@@ -49,7 +51,7 @@ func build(m *testing.M) int {
 const patience = 60 * time.Second
 
 func command(ctx context.Context, args ...string) *exec.Cmd {
-	return exec.CommandContext(ctx, binary, args...)
+	return exec.CommandContext(ctx, binary(), args...)
 }
 
 // leadline runs a command to its end.
