@@ -35,6 +35,10 @@ type Terms struct {
 	// Extra is variance to be added to every component of v at this
 	// position (the map's own error), n, zero on entry.
 	Extra []float64
+	// Wide, where it is not NaN, takes the place of Extra for all parts of
+	// the noise but the first: a position with a distribution of its own, n.
+	// NaN on entry.
+	Wide []float64
 	// Flat, where it is not NaN, is the ln density to use instead at this
 	// position, which then says nothing about the quantities: an unknown
 	// height, say. NaN on entry.
@@ -45,7 +49,7 @@ type Terms struct {
 //
 //	p(v) = Σ Weight·N(v; 0, Cov + Extra·I) + FlatWeight·FlatDensity,
 //
-// all raised to Power. Power below 1 tempers a measurement that shares its
+// (Wide in place of Extra where Terms says so), all raised to Power. Power below 1 tempers a measurement that shares its
 // error with its neighbours: a sum of n of them with Power 1/n counts as one.
 type Noise struct {
 	Parts []NoisePart

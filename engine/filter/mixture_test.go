@@ -10,7 +10,7 @@ import (
 func conditionOne(g gaussian, k int, n Noise, r float64, row []float64, extra float64) (gaussian, float64) {
 	w := newNoiseWork(&n, 1)
 	var t Terms
-	t.resize(1, 1, k)
+	t.Reset(1, 1, k)
 	t.Residual[0] = r
 	copy(t.Row, row)
 	t.Extra[0] = extra
@@ -90,7 +90,7 @@ func TestTwoRowsAgainstOneByOne(t *testing.T) {
 	n := Noise{Parts: []NoisePart{{1, [3]float64{0.5, 0, 0.8}}}}
 	w := newNoiseWork(&n, 2)
 	var terms Terms
-	terms.resize(1, 2, 3)
+	terms.Reset(1, 2, 3)
 	copy(terms.Residual, []float64{1.1, -0.6})
 	copy(terms.Row, rows)
 	terms.Extra[0] = 0.05
@@ -113,7 +113,7 @@ func TestTwoRowsAgainstOneByOne(t *testing.T) {
 	want := -2 - 0.5*math.Log(1.75) - math.Log(2*math.Pi)
 	n = Noise{Parts: []NoisePart{{1, [3]float64{2, 0.5, 1}}}}
 	w = newNoiseWork(&n, 2)
-	terms.resize(1, 2, 2)
+	terms.Reset(1, 2, 2)
 	copy(terms.Residual, []float64{1, 2})
 	if got := w.condition(&gaussian{}, 2, 0, &terms, 0); math.Abs(got-want) > 1e-14 {
 		t.Errorf("log density %v, want %v", got, want)

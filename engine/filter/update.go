@@ -35,7 +35,7 @@ func Update(b *Belief, space Space, l any, w *Workspace) (logEvidence float64, e
 		w.locate(b, space, l.Wants())
 		k := len(b.Quantities)
 		m := l.Rows()
-		w.terms.resize(n, m, k)
+		w.terms.Reset(n, m, k)
 		l.Linearize(&w.terms, &w.at, b.Quantities, b.Mean)
 		noise := l.Noise()
 		nw := newNoiseWork(&noise, m)
@@ -126,17 +126,28 @@ func (b *Belief) thin(t *Trace) {
 	}
 }
 
-func (t *Terms) resize(n, m, k int) {
+// Reset makes the terms ready for n positions, m residual components and k
+// quantities, keeping what memory there is.
+func (t *Terms) Reset(n, m, k int) {
 	t.Residual = resize(t.Residual, n*m)
 	t.Row = resize(t.Row, n*m*k)
 	t.Extra = resize(t.Extra, n)
+	t.Wide = resize(t.Wide, n)
 	t.Flat = resize(t.Flat, n)
 	clear(t.Row)
 	clear(t.Extra)
 	nan := math.NaN()
 	for i := range t.Flat {
-		t.Flat[i] = nan
+		t.Wide[i], t.Flat[i] = nan, nan
 	}
+}
+
+// ExtraOf is the variance to add to part c of the noise at position i.
+func (t *Terms) ExtraOf(i, c int) float64 {
+	if wide := t.Wide[i]; c > 0 && wide == wide {
+		return wide
+	}
+	return t.Extra[i]
 }
 
 // noiseWork is a Noise with what does not change from cell to cell.
@@ -236,7 +247,7 @@ func (w *noiseWork) condition(g *gaussian, k int, angular uint, t *Terms, i int)
 	var logs [maxParts + 1]float64
 	most := w.logFlat
 	for c := range w.parts {
-		l, _ := w.part(c, p, r, t.Extra[i], w.power)
+		l, _ := w.part(c, p, r, t.ExtraOf(i, c), w.power)
 		logs[c] = w.logW[c] + l/w.power
 		most = math.Max(most, logs[c])
 	}
@@ -260,7 +271,7 @@ func (w *noiseWork) condition(g *gaussian, k int, angular uint, t *Terms, i int)
 			}
 			post := prior
 			if c < n {
-				_, inv := w.part(c, p, r, t.Extra[i], 1)
+				_, inv := w.part(c, p, r, t.ExtraOf(i, c), 1)
 				post.gainBy(k, m, &gain, r, inv)
 			}
 			post.mass = share
@@ -283,7 +294,7 @@ func (w *noiseWork) condition(g *gaussian, k int, angular uint, t *Terms, i int)
 		}
 	}
 	if share := logs[best] / sum; share > 1e-6 {
-		_, inv := w.part(best, p, r, t.Extra[i], float64(w.power*share))
+		_, inv := w.part(best, p, r, t.ExtraOf(i, best), float64(w.power*share))
 		g.gainBy(k, m, &gain, r, inv)
 	}
 	return float64(w.power * (most + kernel.Log(sum)))

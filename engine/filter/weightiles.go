@@ -43,7 +43,7 @@ func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 			continue
 		}
 		m := lin.Rows()
-		w.terms.resize(tileCells, m, 2)
+		w.terms.Reset(tileCells, m, 2)
 		lin.Linearize(&w.terms, &w.at, nil, nil)
 		for x, mass := range t.tile(i) {
 			if mass == 0 {
@@ -115,7 +115,7 @@ func (w *noiseWork) density(t *Terms, i int, within float64) float64 {
 	var logs [maxParts]float64
 	most := w.logFlat
 	for c := range w.parts {
-		l, _ := w.part(c, p, r, t.Extra[i], w.power)
+		l, _ := w.part(c, p, r, t.ExtraOf(i, c), w.power)
 		logs[c] = w.logW[c] + l/w.power
 		most = math.Max(most, logs[c])
 	}

@@ -14,8 +14,11 @@ import (
 const alignmentM = 5.0
 
 // RoadAlignment is the pseudo-measurement that ties the heading quantity to
-// the road's heading: 0 = heading - road's heading + v with the variance
-// HeadingVar of the space, an outlier probability of 0.01 and 1/2π for those.
+// the road's heading: 0 = heading - road's heading + v. Most vehicles follow
+// the road, v ~ N(0, (10°)²), past junctions too; turningShare of them do what
+// the road does near by, v ~ N(0, HeadingVar), which near a junction or a bend
+// is wide; 0.01 are outliers with density 1/2π. With the wide part alone, every
+// junction passed straight on would count against the road that has it.
 // It is to be taken after each step, and counts as travelledM/5 m of an
 // independent comparison, at most one: so n steps over 5 m count as one
 // whatever n. ok is false if nothing was travelled or the belief has no
@@ -27,10 +30,20 @@ func RoadAlignment(qs []filter.Quantity, travelledM float64) (l filter.LinearLik
 		return nil, false
 	}
 	return &alignment{heading: h, noise: filter.Noise{
-		Parts:      []filter.NoisePart{{Weight: 0.99}}, // the variance is the position's own
+		// The variances are the position's own.
+		Parts:      []filter.NoisePart{{Weight: 0.99 * (1 - turningShare)}, {Weight: 0.99 * turningShare}},
 		FlatWeight: 0.01, FlatDensity: 1 / (2 * math.Pi), Power: power,
 	}}, true
 }
+
+const (
+	// turningShare: of the ways through a junction one in two or three turns
+	// (practice).
+	turningShare = 0.4
+	// followVar is the variance of a heading about the road that it follows:
+	// (10°)², wander within the road.
+	followVar = (10 * math.Pi / 180) * (10 * math.Pi / 180)
+)
 
 type alignment struct {
 	heading int
@@ -50,7 +63,8 @@ func (l *alignment) Linearize(t *filter.Terms, at *filter.Columns, qs []filter.Q
 		t.Residual[i] = geo.WrapPi(at.Heading[i] - mean[i*k+l.heading])
 		t.Row[i*k] = -at.Curvature[i]
 		t.Row[i*k+l.heading] = 1
-		t.Extra[i] = math.Max(at.HeadingVar[i], minHeadingVar)
+		t.Wide[i] = math.Max(at.HeadingVar[i], minHeadingVar)
+		t.Extra[i] = math.Min(followVar, t.Wide[i])
 	}
 }
 

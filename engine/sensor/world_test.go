@@ -82,13 +82,8 @@ func (w world) spot(wants filter.Wants, points ...geo.Point) *filter.Columns {
 }
 
 func terms(n, m, k int) *filter.Terms {
-	t := &filter.Terms{
-		Residual: make([]float64, n*m), Row: make([]float64, n*m*k),
-		Extra: make([]float64, n), Flat: make([]float64, n),
-	}
-	for i := range t.Flat {
-		t.Flat[i] = math.NaN()
-	}
+	t := new(filter.Terms)
+	t.Reset(n, m, k)
 	return t
 }
 
@@ -103,8 +98,9 @@ func density(l filter.LinearLikelihood, at *filter.Columns, qs []filter.Quantity
 	}
 	n := l.Noise()
 	sum := n.FlatWeight * n.FlatDensity
-	for _, p := range n.Parts {
-		a, b, c := p.Cov[0]+t.Extra[0], p.Cov[1], p.Cov[2]+t.Extra[0]
+	for i, p := range n.Parts {
+		extra := t.ExtraOf(0, i)
+		a, b, c := p.Cov[0]+extra, p.Cov[1], p.Cov[2]+extra
 		if m == 1 {
 			sum += p.Weight * math.Exp(-t.Residual[0]*t.Residual[0]/2/a) / math.Sqrt(2*math.Pi*a)
 			continue

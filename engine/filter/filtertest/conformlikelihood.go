@@ -171,10 +171,8 @@ func (at *At) terms(l filter.LinearLikelihood, space filter.Space, q int, d floa
 	}
 	c := at.sample(space, l.Wants()|filter.WantPosition, q, moved)
 	n, m, k := at.len(), l.Rows(), at.k()
-	t := &filter.Terms{Residual: make([]float64, n*m), Row: make([]float64, n*m*k), Extra: make([]float64, n), Flat: make([]float64, n)}
-	for i := range t.Flat {
-		t.Flat[i] = math.NaN()
-	}
+	t := new(filter.Terms)
+	t.Reset(n, m, k)
 	l.Linearize(t, c, at.Quantities, at.means(q, d))
 	return t
 }
@@ -186,7 +184,7 @@ func (at *At) linear(t *testing.T, l filter.LinearLikelihood, space filter.Space
 	}
 	noiseIsSane(t, l.Noise(), m)
 	a, b := at.terms(l, space, 0, 0), at.terms(l, space, 0, 0)
-	for _, s := range [][2][]float64{{a.Residual, b.Residual}, {a.Row, b.Row}, {a.Extra, b.Extra}, {a.Flat, b.Flat}} {
+	for _, s := range [][2][]float64{{a.Residual, b.Residual}, {a.Row, b.Row}, {a.Extra, b.Extra}, {a.Wide, b.Wide}, {a.Flat, b.Flat}} {
 		for i, v := range s[0] {
 			if math.Float64bits(v) != math.Float64bits(s[1][i]) {
 				t.Fatalf("term %d is %v, then %v", i, v, s[1][i])
@@ -298,8 +296,9 @@ func (at *At) density(dst []float64, l filter.LinearLikelihood, space filter.Spa
 			continue
 		}
 		p := noise.FlatWeight * noise.FlatDensity
-		for _, part := range noise.Parts {
-			a, b, c := part.Cov[0]+terms.Extra[i], part.Cov[1], part.Cov[2]+terms.Extra[i]
+		for j, part := range noise.Parts {
+			extra := terms.ExtraOf(i, j)
+			a, b, c := part.Cov[0]+extra, part.Cov[1], part.Cov[2]+extra
 			x := terms.Residual[i*m]
 			if m == 1 {
 				p += part.Weight * math.Exp(-x*x/(2*a)) / math.Sqrt(2*math.Pi*a)
