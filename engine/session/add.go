@@ -3,6 +3,7 @@ package session
 import (
 	"fmt"
 	"reflect"
+	"slices"
 
 	"leadline/engine/sensor"
 	"leadline/engine/summary"
@@ -16,9 +17,9 @@ const (
 	Unusable    Reason = "unusable"    // a value no filter could use, or an unknown beacon or post
 	TooLate     Reason = "too late"    // older than the suite's window
 	TooEarly    Reason = "too early"   // so far ahead that a clock must be wrong
-	Conflicting Reason = "conflicting" // another measurement has its time, sensor and number
+	Conflicting Reason = "conflicting" // another measurement has its time, sensor and number, or covers its time
 	WrongSpace  Reason = "wrong space" // a kind that this map cannot use
-	Impossible  Reason = "impossible"  // has no likelihood anywhere in the belief
+	Impossible  Reason = "impossible"  // reserved: what is impossible everywhere in the belief is accepted, with evidence -Inf
 	Overfull    Reason = "too much"    // more than a bound allows
 )
 
@@ -38,6 +39,8 @@ const (
 	// maxWaiting bounds the events that are held: those within the window
 	// and those that wait for a motion sensor.
 	maxWaiting = 1 << 17
+	// maxVoices bounds what is told apart by sensor, kind and post.
+	maxVoices = 1024
 )
 
 // Add takes one event and returns the posteriors that it releases, oldest
@@ -46,7 +49,8 @@ const (
 // and changes nothing. An error is a *Refusal.
 //
 // A time is computed when every motion sensor seen so far covers it, or when
-// events hold_s later have come without it.
+// events hold_s later have come without it; and again when an event comes that
+// changes it. Releases that were not changed are not repeated.
 func (s *Session) Add(ev sensor.Event) ([]*summary.Posterior, error) {
 	ps, err := s.add(ev)
 	if err != nil {
@@ -68,19 +72,6 @@ func (s *Session) add(ev sensor.Event) ([]*summary.Posterior, error) {
 	if _, err := sensor.Likelihoods(ev, s.context(ev)); err != nil {
 		return nil, &Refusal{Unusable, err.Error()}
 	}
-	if !s.state.begun {
-		if len(s.log.events) > 0 && s.log.latest.Seconds(ev.Time) > maxJumpS {
-			return nil, &Refusal{TooLate, fmt.Sprintf("it is %.0f s before the latest event: check the sensor's clock", s.log.latest.Seconds(ev.Time))}
-		}
-	}
-	from, late := s.affects(ev)
-	if late && !s.reaches(from) {
-		return nil, &Refusal{TooLate, fmt.Sprintf("it changes what was %.3f s before the vehicle's time and the window is %g s: send sooner, or raise late_window_s (or hold_s, for a sensor of long increments) in the suite",
-			s.state.time.Seconds(from), s.suite.Vehicle.LateWindowS)}
-	}
-	if n := len(s.log.events); n > 0 && ev.Time.Seconds(s.log.latest) > maxJumpS {
-		return nil, &Refusal{TooEarly, fmt.Sprintf("it is %.0f s ahead of the latest event: check the sensor's clock, or open a new session", ev.Time.Seconds(s.log.latest))}
-	}
 	i, found := s.log.find(ev)
 	if found {
 		if reflect.DeepEqual(s.log.events[i].Measurement, ev.Measurement) {
@@ -88,39 +79,107 @@ func (s *Session) add(ev sensor.Event) ([]*summary.Posterior, error) {
 		}
 		return nil, &Refusal{Conflicting, fmt.Sprintf("sensor %q already sent another measurement with this time and the number %d: number them", ev.Sensor, ev.Number)}
 	}
-	if len(s.log.events) >= maxWaiting {
-		return nil, &Refusal{Overfull, fmt.Sprintf("%d events are waiting or within the window: lower the rate or late_window_s", maxWaiting)}
+	if s.log.heard {
+		ahead := ev.Time.Seconds(s.log.latest)
+		if ahead > maxJumpS {
+			return nil, &Refusal{TooEarly, fmt.Sprintf("it is %.0f s ahead of the latest event: check the sensor's clock, or open a new session", ahead)}
+		}
+		if !s.state.begun && -ahead > maxJumpS {
+			return nil, &Refusal{TooLate, fmt.Sprintf("it is %.0f s before the latest event: check the sensor's clock", -ahead)}
+		}
 	}
-	s.log.insert(i, ev)
-	if late {
+	from, err := s.affects(ev)
+	if err != nil {
+		return nil, err
+	}
+	if s.flushed && ev.Time > s.flushedAt {
+		from = max(from, s.flushedAt+1)
+	}
+	if s.begunOnce && from <= s.reached {
+		if err := s.reaches(from); err != nil {
+			return nil, err
+		}
+	}
+	if len(s.log.voices) >= maxVoices && !s.log.knows(voiceOf(ev)) {
+		return nil, &Refusal{Overfull, fmt.Sprintf("sensor %q would be the session's %dth, and %d are allowed: give a sensor the same name in all its events", ev.Sensor, maxVoices+1, maxVoices)}
+	}
+	s.log.insert(i, ev, s.suite)
+	if s.begunOnce && from <= s.state.time {
 		s.rewind(from)
 	}
-	return s.run(false), nil
+	out := s.run(false)
+	return append(out, s.relieve()...), nil
 }
 
-// affects returns the time from which an event changes what was computed, and
-// whether anything was.
-func (s *Session) affects(ev sensor.Event) (sensor.Time, bool) {
-	if !s.state.begun {
-		return 0, false
+// affects returns the time from which on an event changes the belief. An
+// increment that overlaps another one of its sensor would be counted twice:
+// that is an error.
+func (s *Session) affects(ev sensor.Event) (sensor.Time, error) {
+	if !sensor.IsMotion(ev.Measurement.Kind()) {
+		return ev.Time, nil
 	}
-	from := ev.Time
-	if since, ok := sensor.Since(ev.Measurement); ok {
-		from = min(from, since+1) // a segment that ends at since is not touched
+	name := sourceName(ev, s.suite)
+	var src source
+	if i, found := s.log.findSource(name); found {
+		src = s.log.sources[i]
 	}
-	return from, from <= s.state.time
+	named := ev
+	named.Sensor = name
+	i, _ := slices.BinarySearchFunc(src.events, named, sensor.Event.Compare)
+	before, hasBefore := src.before(i)
+	since := s.since(ev, before, hasBefore)
+	if _, ok := sensor.Since(ev.Measurement); ok {
+		for _, o := range src.events[max(i-1, 0):min(i+1, len(src.events))] {
+			if other, ok := sensor.Since(o.Measurement); ok && overlap(since, ev.Time, other, o.Time) {
+				return 0, &Refusal{Conflicting, fmt.Sprintf("sensor %q already covers %.3f s of this increment by another one: let each begin where the one before ended, and name two sensors differently",
+					ev.Sensor, min(ev.Time, o.Time).Seconds(max(since, other)))}
+			}
+		}
+	}
+	return min(ev.Time, since+1), nil // a segment that ends at since is not touched
 }
 
-// reaches reports whether a time is within the window and there is a snapshot
-// from before it.
-func (s *Session) reaches(from sensor.Time) bool {
-	return s.state.time.Seconds(from) <= s.suite.Vehicle.LateWindowS && len(s.snaps) > 0 && s.snaps[0].time < from
+// overlap reports whether two increments cover the same time: more than a
+// hundredth of the shorter one, which is what rounded times may do.
+func overlap(since1, at1, since2, at2 sensor.Time) bool {
+	both := min(at1, at2) - max(since1, since2)
+	return both > min(at1-since1, at2-since2)/100
+}
+
+// reaches is nil if the session can go back to before a time, otherwise why
+// it cannot.
+func (s *Session) reaches(from sensor.Time) error {
+	switch {
+	case s.flushed && from <= s.flushedAt:
+		return &Refusal{TooLate, "the drive was ended at a later time, and what was then is final: open a new session"}
+	case !s.inWindow(from):
+		return &Refusal{TooLate, fmt.Sprintf("it changes what was %.3f s before the vehicle's time and the window is %g s: send sooner, or raise late_window_s (or hold_s, for a sensor of long increments) in the suite",
+			s.reached.Seconds(from), s.suite.Vehicle.LateWindowS)}
+	case !s.snaps[0].precedes(from):
+		return &Refusal{Overfull, fmt.Sprintf("it changes what was %.3f s before the vehicle's time; it is within the window, but no more than %d events are held to go back among: lower the rate, late_window_s or hold_s",
+			s.reached.Seconds(from), s.maxWaiting)}
+	}
+	return nil
 }
 
 // Flush computes what is left, waiting for nobody, and makes every posterior
-// final: at the end of a drive.
+// final: at the end of a drive. The last time is never passed over. Events
+// after it go on from there, counting for their part after it; events before
+// it are refused.
 func (s *Session) Flush() []*summary.Posterior {
 	out := s.run(true)
+	if s.state.unread {
+		if p := s.summarise(); s.release(p) {
+			out = append(out, p)
+		}
+	}
+	s.superseded = nil
 	s.finish(len(s.recent))
+	if s.state.begun {
+		s.flushed, s.flushedAt = true, s.state.time
+		clear(s.snaps)
+		s.snaps = append(s.snaps[:0], snapshot{s.state.time, s.state.clone()})
+		s.log.drop(s.state.time, false)
+	}
 	return out
 }

@@ -1,17 +1,84 @@
 package session
 
 import (
+	"fmt"
+
 	"leadline/engine/geo"
+	"leadline/engine/sensor"
 	"leadline/engine/summary"
 )
 
+// summarise makes the posterior of the present state and takes the pose from
+// it.
+func (s *Session) summarise() *summary.Posterior {
+	st := &s.state
+	p := &summary.Posterior{}
+	if err := s.read(s.sum, p); err != nil {
+		panic(fmt.Sprintf("session: %v", err)) // a belief is never empty
+	}
+	p.GapS = st.gapS
+	st.pose = sensor.Pose{At: p.MeanFrame, HeadingVar: sensor.NoHeading}
+	if p.Heading.Known {
+		g, _ := s.space.Frame().Convergence(p.MeanFrame)
+		st.pose.HeadingRad = geo.WrapPi(p.Heading.TrueRad - g)
+		st.pose.HeadingVar = p.Heading.SigmaRad * p.Heading.SigmaRad
+	}
+	st.evidence, st.gapS, st.posteriorAt, st.unread = nil, 0, st.time, false
+	s.fresh = true
+	return p
+}
+
+// read summarizes the present belief into dst and changes nothing else.
+func (s *Session) read(sum *summary.Summarizer, dst *summary.Posterior) error {
+	st := &s.state
+	b := st.belief
+	b.Read(&s.cloud, s.space, &s.work)
+	in := summary.Input{
+		TimeNS: int64(st.time), Frame: s.space.Frame(), Belief: b, Cloud: &s.cloud,
+		Speed: st.speed, Evidence: st.evidence, LogEvidence: st.logEvidence,
+		Accepted: st.processed, Refused: s.refused,
+	}
+	if s.lines != nil {
+		in.Lines = s.lines.Lines(b.Level)
+	}
+	if s.names != nil {
+		in.Names = s.names
+	}
+	return sum.Summarize(dst, &in)
+}
+
+// refresh has the summarizer look at the present belief, if that has moved on
+// since the last posterior. Before the first one there is nothing to ask.
+func (s *Session) refresh() error {
+	if s.fresh || !s.state.begun {
+		return nil
+	}
+	var p summary.Posterior
+	if err := s.read(s.sum, &p); err != nil {
+		return err
+	}
+	s.fresh = true
+	return nil
+}
+
 // Region returns the densest part of the plane that holds a fraction of the
-// present belief; see summary.Summarizer.Region.
-func (s *Session) Region(fraction float64) (*summary.Region, error) { return s.sum.Region(fraction) }
+// present belief; see summary.Summarizer.Region. The present belief may be
+// that of a time after the latest posterior, while posteriors are passed over.
+func (s *Session) Region(fraction float64) (*summary.Region, error) {
+	if err := s.refresh(); err != nil {
+		return nil, err
+	}
+	return s.sum.Region(fraction)
+}
 
 // Inside returns the probability of a polygon under the present belief; see
 // summary.Summarizer.Inside.
-func (s *Session) Inside(polygon [][]geo.LonLat) (float64, error) { return s.sum.Inside(polygon) }
+func (s *Session) Inside(polygon [][]geo.LonLat) (float64, error) {
+	if err := s.refresh(); err != nil {
+		return 0, err
+	}
+	return s.sum.Inside(polygon)
+}
 
 // Protection returns the protection radius of the present belief at another
 // integrity risk than the suite's. An error says what is wrong with the risk.
@@ -21,14 +88,8 @@ func (s *Session) Protection(risk float64) (summary.Protection, error) {
 	if err != nil {
 		return summary.Protection{}, err
 	}
-	b := s.state.belief
-	b.Read(&s.cloud, s.space, &s.work)
-	in := summary.Input{TimeNS: int64(s.state.time), Frame: s.space.Frame(), Belief: b, Cloud: &s.cloud}
-	if s.lines != nil {
-		in.Lines = s.lines.Lines(b.Level)
-	}
 	var p summary.Posterior
-	if err := sum.Summarize(&p, &in); err != nil {
+	if err := s.read(sum, &p); err != nil {
 		return summary.Protection{}, err
 	}
 	return p.Protection, nil

@@ -1,8 +1,8 @@
 package session
 
 import (
-	"cmp"
 	"slices"
+	"sort"
 	"strings"
 
 	"leadline/engine/sensor"
@@ -13,77 +13,150 @@ type log struct {
 	events []sensor.Event
 	// next is the index of the first event that is not processed.
 	next int
-	// latest is the greatest event time seen.
+	// latest is the greatest event time seen, if heard any.
 	latest sensor.Time
-	// motion tells, by sensor, how far its increments reach and whether it
-	// is known to measure motion.
-	motion []coverage
+	heard  bool
+	// sources are what has measured motion so far, by name.
+	sources []source
+	// voices are all that has been heard so far, in order.
+	voices []voice
 }
 
-// coverage is how far a motion sensor's increments reach.
-type coverage struct {
-	sensor string
-	until  sensor.Time
+// voice is what shares one error from one event to the next: a kind of a
+// sensor, and of the bearings to several posts those of one.
+type voice struct{ sensor, kind, post string }
+
+func voiceOf(ev sensor.Event) voice {
+	v := voice{sensor: ev.Sensor, kind: ev.Measurement.Kind()}
+	if m, ok := ev.Measurement.(sensor.AcousticBearing); ok {
+		v.post = m.Post
+	}
+	return v
 }
 
-func compareEvents(a, b sensor.Event) int {
-	if c := cmp.Compare(a.Time, b.Time); c != 0 {
+func (v voice) compare(w voice) int {
+	if c := strings.Compare(v.sensor, w.sensor); c != 0 {
 		return c
 	}
-	if c := strings.Compare(a.Sensor, b.Sensor); c != 0 {
+	if c := strings.Compare(v.kind, w.kind); c != 0 {
 		return c
 	}
-	return cmp.Compare(a.Number, b.Number)
+	return strings.Compare(v.post, w.post)
+}
+
+// source is what one sensor says about the motion.
+type source struct {
+	name   string
+	until  sensor.Time    // how far it reaches
+	events []sensor.Event // by time and number, from the last before the log's on
+}
+
+// sourceName keeps apart the kinds of a sensor that no suite declares: one
+// that a suite declares has only one.
+func sourceName(ev sensor.Event, suite *sensor.Suite) string {
+	for i := range suite.Sensors {
+		if suite.Sensors[i].Name == ev.Sensor {
+			return ev.Sensor
+		}
+	}
+	return ev.Sensor + "\x00" + ev.Measurement.Kind()
 }
 
 // find returns where an event belongs and whether one with the same time,
 // sensor and number is there.
 func (l *log) find(ev sensor.Event) (int, bool) {
-	return slices.BinarySearchFunc(l.events, ev, compareEvents)
+	return slices.BinarySearchFunc(l.events, ev, sensor.Event.Compare)
 }
 
-// insert puts an event at its place.
-func (l *log) insert(i int, ev sensor.Event) {
+func (l *log) findSource(name string) (int, bool) {
+	return slices.BinarySearchFunc(l.sources, name, func(s source, n string) int { return strings.Compare(s.name, n) })
+}
+
+// knows reports whether an event's voice has been heard.
+func (l *log) knows(v voice) bool {
+	_, found := slices.BinarySearchFunc(l.voices, v, voice.compare)
+	return found
+}
+
+// insert puts an event at its place i.
+func (l *log) insert(i int, ev sensor.Event, suite *sensor.Suite) {
 	l.events = slices.Insert(l.events, i, ev)
 	if i < l.next {
 		l.next++
 	}
-	l.latest = max(l.latest, ev.Time)
-	if sensor.IsMotion(ev.Measurement.Kind()) {
-		j, found := slices.BinarySearchFunc(l.motion, ev.Sensor, func(c coverage, name string) int { return strings.Compare(c.sensor, name) })
-		if !found {
-			l.motion = slices.Insert(l.motion, j, coverage{sensor: ev.Sensor})
-		}
-		l.motion[j].until = max(l.motion[j].until, ev.Time)
+	if !l.heard || ev.Time > l.latest {
+		l.heard, l.latest = true, ev.Time
 	}
+	v := voiceOf(ev)
+	if j, found := slices.BinarySearchFunc(l.voices, v, voice.compare); !found {
+		l.voices = slices.Insert(l.voices, j, v)
+	}
+	if !sensor.IsMotion(v.kind) {
+		return
+	}
+	ev.Sensor = sourceName(ev, suite)
+	j, found := l.findSource(ev.Sensor)
+	if !found {
+		l.sources = slices.Insert(l.sources, j, source{name: ev.Sensor, until: ev.Time})
+	}
+	src := &l.sources[j]
+	src.until = max(src.until, ev.Time)
+	k, _ := slices.BinarySearchFunc(src.events, ev, sensor.Event.Compare)
+	src.events = slices.Insert(src.events, k, ev)
 }
 
-// covered reports whether every motion sensor has reached a time, or hold has
-// passed without it.
+// after is the index of a source's first event after a time.
+func (s *source) after(t sensor.Time) int {
+	return sort.Search(len(s.events), func(i int) bool { return s.events[i].Time > t })
+}
+
+// before returns the time of the event before the i-th; false for the first.
+func (s *source) before(i int) (sensor.Time, bool) {
+	if i == 0 {
+		return 0, false
+	}
+	return s.events[i-1].Time, true
+}
+
+// covered reports whether everything that measures motion has reached a time,
+// or hold has passed without it. Standstills are not waited for: nobody knows
+// when the next one is due.
 func (l *log) covered(t, hold sensor.Time) bool {
 	if l.latest > t+hold {
 		return true
 	}
-	for _, c := range l.motion {
-		if c.until < t {
+	waited := false
+	for i := range l.sources {
+		s := &l.sources[i]
+		if _, still := s.events[len(s.events)-1].Measurement.(sensor.Standstill); still {
+			continue
+		}
+		if s.until < t {
 			return false
 		}
+		waited = true
 	}
-	return len(l.motion) > 0
+	return waited
 }
 
-// drop forgets events up to a time that no increment after it needs.
-func (l *log) drop(before sensor.Time) {
-	n := 0
-	for n < l.next && l.events[n].Time < before {
-		n++
-	}
-	// In large bites, so that the copying stays linear.
-	if n > 256 && n > len(l.events)/2 {
+// drop forgets what nothing after a time needs: in large bites, so that the
+// copying stays linear, or all of it.
+func (l *log) drop(t sensor.Time, all bool) {
+	n := sort.Search(l.next, func(i int) bool { return l.events[i].Time > t })
+	if worth(n, len(l.events), all) {
 		l.events = slices.Delete(l.events, 0, n)
 		l.next -= n
 	}
+	for i := range l.sources {
+		s := &l.sources[i]
+		// The last one says where the next begins.
+		if n := s.after(t) - 1; worth(n, len(s.events), all) {
+			s.events = slices.Delete(s.events, 0, n)
+		}
+	}
 }
+
+func worth(n, of int, all bool) bool { return n > 0 && (all || n > 256 && n > of/2) }
 
 // group returns the end of the events that have the time of event i, and
 // whether all of them are motion.

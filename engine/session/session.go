@@ -116,14 +116,19 @@ type Session struct {
 	dim      int
 	cellsM   []float64 // widest cell of each level, on lines
 	maxCells int
+	// hold is the suite's hold_s, still for how long a standstill speaks.
+	hold, still                    sensor.Time
+	wideSize, hugeSize, maxWaiting int // the constants, less in tests
 
 	state  state
 	snaps  []snapshot
 	log    log
 	work   filter.Workspace
 	motion sensor.Motion
+	cuts   []sensor.Time
 	cloud  filter.Cloud
 	sum    *summary.Summarizer
+	fresh  bool                 // sum has seen the present belief
 	recent []*summary.Posterior // by time; the first final of them are final
 	final  int
 	// superseded are posteriors that a late event took back, latest first.
@@ -131,6 +136,14 @@ type Session struct {
 	hasher     *summary.Hasher
 	accepted   uint64
 	refused    uint64
+
+	// reached is the latest time that was computed, since begunOnce.
+	begunOnce bool
+	reached   sensor.Time
+	// flushedAt is the last time of the last Flush.
+	flushed   bool
+	flushedAt sensor.Time
+	pressed   bool // do not wait: see relieve
 }
 
 // New starts a session. An error says what is wrong with the configuration.
@@ -141,7 +154,13 @@ func New(c Config) (*Session, error) {
 	if err := c.Start.Check(); err != nil {
 		return nil, err
 	}
-	s := &Session{vehicle: c.Vehicle, space: c.Space, names: c.Names, dim: 2, maxCells: c.MaxCells, hasher: summary.NewHasher()}
+	if c.MaxCells < 0 {
+		return nil, fmt.Errorf("session: MaxCells is %d: it must be positive, or 0 for %d", c.MaxCells, defaultMaxCells)
+	}
+	s := &Session{
+		vehicle: c.Vehicle, space: c.Space, names: c.Names, dim: 2, maxCells: c.MaxCells, hasher: summary.NewHasher(),
+		wideSize: wideSize, hugeSize: hugeSize, maxWaiting: maxWaiting,
+	}
 	if s.maxCells == 0 {
 		s.maxCells = defaultMaxCells
 	}
@@ -153,10 +172,15 @@ func New(c Config) (*Session, error) {
 	}
 	s.suite = sensor.Default(s.dim)
 	if c.Suite != nil {
+		if err := c.Suite.Validate(); err != nil {
+			return nil, err
+		}
 		s.suite = c.Suite.For(s.dim)
 	}
 	s.motion.Suite = s.suite
 	v := s.suite.Vehicle
+	s.hold = sensor.Time(v.HoldS * 1e9)
+	s.still = sensor.Time(min(standstillS, v.LateWindowS/2) * 1e9)
 	var err error
 	s.sum, err = summary.New(summary.Options{AlertLimitM: v.AlertLimitM, IntegrityRisk: v.IntegrityRisk, LateralSigmaM: v.LateralSigmaM})
 	if err != nil {

@@ -1,0 +1,144 @@
+package session
+
+import (
+	"fmt"
+	"math"
+	"slices"
+
+	"leadline/engine/filter"
+	"leadline/engine/sensor"
+	"leadline/engine/summary"
+)
+
+// roadSensor names the comparison of the vehicle's heading with the road's in
+// a posterior's evidence.
+const roadSensor = "road"
+
+// move predicts the belief to t. A stretch of time that is measured in part is
+// cut where that changes, so that a gap is the same however other measurements
+// cut it.
+func (s *Session) move(to sensor.Time) {
+	from := s.state.time
+	s.gather(from, to)
+	if gap := s.motion.GapS(); gap == 0 || gap == s.motion.Seconds() {
+		s.predict()
+		return
+	}
+	s.cuts = append(s.cutsWithin(s.cuts[:0], from, to), to)
+	for _, cut := range s.cuts {
+		s.gather(from, cut)
+		s.predict()
+		from = cut
+	}
+}
+
+// cutsWithin appends the times within (from, to), in order, at which something
+// that measures the motion begins or ends.
+func (s *Session) cutsWithin(dst []sensor.Time, from, to sensor.Time) []sensor.Time {
+	add := func(t sensor.Time) {
+		if t > from && t < to {
+			dst = append(dst, t)
+		}
+	}
+	s.spans(from, to, func(ev sensor.Event, begin sensor.Time) {
+		add(begin)
+		add(ev.Time)
+	})
+	slices.Sort(dst)
+	return slices.Compact(dst)
+}
+
+// spans calls use for what measures motion within (from, to], with the time
+// from which on it does.
+func (s *Session) spans(from, to sensor.Time, use func(ev sensor.Event, begin sensor.Time)) {
+	for i := range s.log.sources {
+		src := &s.log.sources[i]
+		for j := src.after(from); j < len(src.events); j++ {
+			before, ok := src.before(j)
+			begin := s.since(src.events[j], before, ok)
+			if begin >= to {
+				break // those of one sensor do not overlap
+			}
+			use(src.events[j], begin)
+		}
+	}
+}
+
+// since returns the time from which on an event of a motion speaks. An
+// increment says so; a speed speaks since the same sensor's event before, at
+// most hold_s, which is how long a time waits for it (the first one for
+// nothing); a standstill likewise, at most standstillS or half of the late
+// window. For everything else it is the event's own time.
+func (s *Session) since(ev sensor.Event, before sensor.Time, hasBefore bool) sensor.Time {
+	begin := ev.Time
+	switch m := ev.Measurement.(type) {
+	case sensor.Speed:
+		if !hasBefore {
+			return begin
+		}
+		begin -= s.hold
+	case sensor.Standstill:
+		begin -= s.still
+	default:
+		if since, ok := sensor.Since(m); ok {
+			return since
+		}
+		return begin
+	}
+	if hasBefore {
+		begin = max(begin, before)
+	}
+	return begin
+}
+
+// standstillS is for how long a standstill speaks (see sensor.Standstill).
+const standstillS = 1.0
+
+// gather collects the motion of a stretch of time.
+func (s *Session) gather(from, to sensor.Time) {
+	m, st := &s.motion, &s.state
+	m.Reset(from, to)
+	m.GapAgeS, m.HasVelocity, m.VelocityMPS = st.gapAgeS, st.hasVelocity, st.velocity
+	s.spans(from, to, m.Add)
+}
+
+// predict moves the belief by the motion that was gathered.
+func (s *Session) predict() {
+	st, m := &s.state, &s.motion
+	step, err := m.Step(st.belief.Quantities, s.dim, s.space.Frame(), st.pose)
+	if err != nil {
+		panic(fmt.Sprintf("session: %v", err)) // Supports refuses what a step cannot take
+	}
+	filter.Predict(st.belief, s.space, step, &s.work)
+	travelledM := m.TravelledM()
+	st.odometerM += travelledM
+	if gap := m.GapS(); gap > 0 {
+		st.gapS += gap
+		st.gapAgeS += gap
+		st.speed = summary.Speed{}
+	} else {
+		st.gapAgeS = 0
+		dt := m.Seconds()
+		st.hasVelocity = step.Local == nil
+		for i := range s.dim {
+			st.velocity[i] = step.Add[i] / dt
+		}
+		st.speed = summary.Speed{Known: true, MPS: travelledM / dt, SigmaMPS: math.Sqrt(step.Q[0]) / dt}
+	}
+	if l := s.followsRoad(travelledM); l != nil {
+		s.weigh(sensor.Event{Sensor: roadSensor, Measurement: sensor.Turn{}}, l)
+	}
+}
+
+// followsRoad is what the last motion says about the road's direction; nil on
+// a plane and where it says nothing.
+func (s *Session) followsRoad(travelledM float64) filter.LinearLikelihood {
+	if s.lines == nil {
+		return nil
+	}
+	if l, ok := s.motion.CrossTrack(s.space.Frame(), s.state.pose); ok {
+		return l
+	}
+	l, _ := sensor.RoadAlignment(s.state.belief.Quantities, travelledM)
+	return l
+}

@@ -1,0 +1,91 @@
+package session
+
+import (
+	"slices"
+
+	"leadline/engine/filter"
+	"leadline/engine/sensor"
+	"leadline/engine/summary"
+)
+
+// state is everything that a snapshot holds.
+type state struct {
+	begun       bool
+	time        sensor.Time
+	belief      *filter.Belief
+	logEvidence float64
+	pose        sensor.Pose
+	// gapAgeS is for how long nothing has measured the motion, velocity what
+	// it was before.
+	gapAgeS     float64
+	hasVelocity bool
+	velocity    [2]float64
+	speed       summary.Speed
+	odometerM   float64 // distance measured since the start
+	// Since the last posterior: evidence (at most maxEvidence), gaps, when
+	// that was, and whether there has been a step.
+	evidence    []summary.Evidence
+	gapS        float64
+	posteriorAt sensor.Time
+	unread      bool
+	// previous holds the last processed event of each voice, in order.
+	previous  []lastEvent
+	processed uint64 // events
+}
+
+type lastEvent struct {
+	voice
+	time      sensor.Time
+	odometerM float64
+}
+
+func (st *state) clone() state {
+	c := *st
+	c.belief = st.belief.Clone()
+	c.previous = slices.Clone(st.previous)
+	c.evidence = slices.Clone(st.evidence)
+	return c
+}
+
+func (st *state) find(v voice) (int, bool) {
+	return slices.BinarySearchFunc(st.previous, v, func(l lastEvent, v voice) int { return l.compare(v) })
+}
+
+func (st *state) remember(ev sensor.Event) {
+	v := voiceOf(ev)
+	i, found := st.find(v)
+	if !found {
+		st.previous = slices.Insert(st.previous, i, lastEvent{voice: v})
+	}
+	st.previous[i].time, st.previous[i].odometerM = ev.Time, st.odometerM
+}
+
+// maxEvidence bounds the single evidences that a posterior lists; the running
+// sum has them all.
+const maxEvidence = 64
+
+// record keeps one evidence. Several of one event count as one.
+func (st *state) record(e summary.Evidence) {
+	n := len(st.evidence)
+	if n > 0 {
+		if l := &st.evidence[n-1]; l.Sensor == e.Sensor && l.Number == e.Number && l.Kind == e.Kind {
+			l.LogEvidence += e.LogEvidence
+			return
+		}
+	}
+	if n == maxEvidence {
+		st.evidence = slices.Delete(st.evidence, 0, 1)
+	}
+	st.evidence = append(st.evidence, e)
+}
+
+// snapshot is the state before the events that follow time. The first one is
+// that of a session that has not begun.
+type snapshot struct {
+	time sensor.Time
+	state
+}
+
+// precedes reports whether what happens from a time on can be computed again
+// from the snapshot.
+func (s *snapshot) precedes(from sensor.Time) bool { return !s.begun || s.time < from }
