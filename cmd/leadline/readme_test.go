@@ -211,14 +211,14 @@ func TestReadmeDefaults(t *testing.T) {
 		{"stretch_m_per_sqrt_m", "| " + number(roads.StretchMPerSqrtM) + "; roads only |"},
 		{"corner_sigma_m", "| " + number(roads.CornerSigmaM) + "; roads only |"},
 		{"max_speed_mps", "| " + number(roads.MaxSpeedMPS) + ", " + number(roads.MaxAccelMPS2) + ", " + number(roads.MaxTurnDPS) + " |"},
-		{"integrity_risk", "| 1e-7 |"},
+		{"integrity_risk", "| 1e-4 on roads, 1e-7 on a plane |"},
 	} {
 		if !regexp.MustCompile("(?m)^\\| `" + c.key + "`.*" + regexp.QuoteMeta(c.says) + "$").MatchString(page) {
 			t.Errorf("README.md does not say of %s: %s", c.key, c.says)
 		}
 	}
-	if roads.IntegrityRisk != 1e-7 || plane.IntegrityRisk != 1e-7 {
-		t.Errorf("the integrity risk is %v and %v unless said; README.md says 1e-7", roads.IntegrityRisk, plane.IntegrityRisk)
+	if roads.IntegrityRisk != 1e-4 || plane.IntegrityRisk != 1e-7 {
+		t.Errorf("the integrity risk is %v and %v unless said; README.md says 1e-4 and 1e-7", roads.IntegrityRisk, plane.IntegrityRisk)
 	}
 }
 

@@ -50,7 +50,7 @@ func TestDefaultsAreValid(t *testing.T) {
 		if err := s.Validate(); err != nil {
 			t.Errorf("dim %d: %v", dim, err)
 		}
-		if s.Vehicle.IntegrityRisk != 1e-7 {
+		if want := []float64{1: 1e-4, 2: 1e-7}[dim]; s.Vehicle.IntegrityRisk != want {
 			t.Errorf("dim %d: integrity risk %v", dim, s.Vehicle.IntegrityRisk)
 		}
 	}
