@@ -21,40 +21,15 @@ type gaussian struct {
 }
 
 // advance sets g to the Gaussian of F x + add + w, w ~ N(0, q); f nil is the
-// identity.
-func (g *gaussian) advance(k int, f, add, q []float64) {
-	if f != nil {
-		var fc [MaxK][MaxK]float64
-		var mean [MaxK]float64
-		for i := range k {
-			row := f[i*k : i*k+k]
-			sum := 0.0
-			for j, v := range row {
-				sum += float64(v * g.mean[j])
-			}
-			mean[i] = sum
-			for j := range k {
-				s := 0.0
-				for l, v := range row {
-					if v != 0 {
-						s += float64(v * g.at(l, j))
-					}
-				}
-				fc[i][j] = s
-			}
-		}
-		for i := range k {
-			for j := 0; j <= i; j++ {
-				s := 0.0
-				for l, v := range f[j*k : j*k+k] {
-					if v != 0 {
-						s += float64(fc[i][l] * v)
-					}
-				}
-				g.cov[Packed(i, j)] = s
-			}
-		}
-		g.mean = mean
+// identity. only is the one row in which F differs from the identity, or -1 if
+// there are several.
+func (g *gaussian) advance(k int, f, add, q []float64, only int) {
+	switch {
+	case f == nil:
+	case only >= 0:
+		g.advanceRow(k, f[only*k:only*k+k], only)
+	default:
+		g.advanceAll(k, f)
 	}
 	for i := range k {
 		g.mean[i] += add[i]
@@ -62,6 +37,86 @@ func (g *gaussian) advance(k int, f, add, q []float64) {
 	for i, v := range q {
 		g.cov[i] += v
 	}
+}
+
+// advanceRow replaces quantity d by row·x: the covariances of d alone change.
+func (g *gaussian) advanceRow(k int, row []float64, d int) {
+	var c [MaxK]float64 // C rowᵀ
+	mean, v := 0.0, 0.0
+	for j, f := range row {
+		if f == 0 {
+			continue
+		}
+		mean += float64(f * g.mean[j])
+		for i := range k {
+			c[i] += float64(f * g.at(i, j))
+		}
+	}
+	for j, f := range row {
+		v += float64(f * c[j])
+	}
+	g.mean[d] = mean
+	for i := range k {
+		if i < d {
+			g.cov[Packed(d, i)] = c[i]
+		} else {
+			g.cov[Packed(i, d)] = c[i]
+		}
+	}
+	g.cov[Packed(d, d)] = v
+}
+
+func (g *gaussian) advanceAll(k int, f []float64) {
+	var fc [MaxK][MaxK]float64
+	var mean [MaxK]float64
+	for i := range k {
+		row := f[i*k : i*k+k]
+		sum := 0.0
+		for j, v := range row {
+			sum += float64(v * g.mean[j])
+		}
+		mean[i] = sum
+		for j := range k {
+			s := 0.0
+			for l, v := range row {
+				if v != 0 {
+					s += float64(v * g.at(l, j))
+				}
+			}
+			fc[i][j] = s
+		}
+	}
+	for i := range k {
+		for j := 0; j <= i; j++ {
+			s := 0.0
+			for l, v := range f[j*k : j*k+k] {
+				if v != 0 {
+					s += float64(fc[i][l] * v)
+				}
+			}
+			g.cov[Packed(i, j)] = s
+		}
+	}
+	g.mean = mean
+}
+
+// onlyRow returns the one row in which a k×k matrix differs from the identity,
+// -1 if there are several.
+func onlyRow(k int, f []float64) int {
+	only := -1
+	for i, v := range f {
+		row, want := i/k, 0.0
+		if row == i%k {
+			want = 1
+		}
+		if v != want && row != only {
+			if only >= 0 {
+				return -1
+			}
+			only = row
+		}
+	}
+	return max(only, 0)
 }
 
 func (g *gaussian) at(i, j int) float64 {

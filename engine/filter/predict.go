@@ -99,6 +99,10 @@ func Predict(b *Belief, space Space, step Step, w *Workspace) {
 			copy(mv.stepF, step.F)
 		}
 	}
+	only := -1
+	if step.Local == nil && step.F != nil {
+		only = onlyRow(k, step.F)
+	}
 	var g gaussian
 	for i := range b.Key {
 		b.load(&g, i, k)
@@ -108,7 +112,7 @@ func Predict(b *Belief, space Space, step Step, w *Workspace) {
 			copy(mv.stepF, w.f[i*b.Dim*k:(i+1)*b.Dim*k])
 			f, add = mv.stepF, mv.stepAdd
 		}
-		g.advance(k, f, add, step.Q)
+		g.advance(k, f, add, step.Q, only)
 		if b.Dim == 1 {
 			chart, cell := LineCell(b.Key[i])
 			mv.line(chart, cell, &g)

@@ -158,6 +158,11 @@ type noiseWork struct {
 	power   float64
 	logFlat float64 // ln(FlatWeight·FlatDensity), -Inf without
 	logZ    float64 // m·ln sqrt(2π)
+	logBeta float64 // ln power
+	// The last noise of each part and its log determinant: neighbouring cells
+	// often share it.
+	last    [maxParts]sym2
+	lastLog [maxParts]float64
 }
 
 const maxParts = 4
@@ -174,6 +179,7 @@ func newNoiseWork(n *Noise, m int) noiseWork {
 		w.logW[i] = kernel.Log(p.Weight)
 	}
 	w.logFlat = kernel.Log(n.FlatWeight * n.FlatDensity)
+	w.logBeta = kernel.Log(w.power)
 	return w
 }
 
@@ -190,6 +196,15 @@ func (s sym2) logNormal(m int, r [2]float64) (log float64, inv sym2) {
 	inv = sym2{s.c / det, -s.b / det, s.a / det}
 	q := float64(float64(r[0]*r[0])*inv.a) + float64(2*r[0]*r[1]*inv.b) + float64(float64(r[1]*r[1])*inv.c)
 	return -0.5 * (q + kernel.Log(det)), inv
+}
+
+// inverse returns the inverse; of one row, 1/a alone.
+func (s sym2) inverse(m int) sym2 {
+	if m == 1 {
+		return sym2{a: 1 / s.a}
+	}
+	det := float64(s.a*s.c) - float64(s.b*s.b)
+	return sym2{s.c / det, -s.b / det, s.a / det}
 }
 
 func (s sym2) logDet(m int) float64 {
@@ -239,7 +254,7 @@ func (w *noiseWork) condition(g *gaussian, k int, angular uint, t *Terms, i int)
 		}
 	}
 	if len(w.parts) == 1 && math.IsInf(w.logFlat, -1) {
-		log, inv := w.part(0, p, r, t.Extra[i], w.power)
+		log, inv := w.part(0, p, r, t.Extra[i])
 		g.gainBy(k, m, &gain, r, inv)
 		return float64(w.power*w.logW[0]) + log
 	}
@@ -247,7 +262,7 @@ func (w *noiseWork) condition(g *gaussian, k int, angular uint, t *Terms, i int)
 	var logs [maxParts + 1]float64
 	most := w.logFlat
 	for c := range w.parts {
-		l, _ := w.part(c, p, r, t.ExtraOf(i, c), w.power)
+		l, _ := w.part(c, p, r, t.ExtraOf(i, c))
 		logs[c] = w.logW[c] + l/w.power
 		most = math.Max(most, logs[c])
 	}
@@ -271,7 +286,7 @@ func (w *noiseWork) condition(g *gaussian, k int, angular uint, t *Terms, i int)
 			}
 			post := prior
 			if c < n {
-				_, inv := w.part(c, p, r, t.ExtraOf(i, c), 1)
+				_, inv := w.part(c, p, r, t.ExtraOf(i, c))
 				post.gainBy(k, m, &gain, r, inv)
 			}
 			post.mass = share
@@ -285,34 +300,48 @@ func (w *noiseWork) condition(g *gaussian, k int, angular uint, t *Terms, i int)
 		*g = mix
 		return most + kernel.Log(sum)
 	}
-	// One of many views of the same error: the likeliest Gaussian part
-	// updates the quantities, with its share as part of the power.
-	best := 0
+	// One of many views of the same error: a scale mixture updates with the
+	// information of its parts, each by its share, times the power.
+	var info sym2
 	for c := range n {
-		if logs[c] > logs[best] {
-			best = c
+		if share := logs[c] / sum; share > 1e-6 {
+			inv := w.noise(c, t.ExtraOf(i, c)).inverse(m)
+			info.a += float64(share * inv.a)
+			info.b += float64(share * inv.b)
+			info.c += float64(share * inv.c)
 		}
 	}
-	if share := logs[best] / sum; share > 1e-6 {
-		_, inv := w.part(best, p, r, t.ExtraOf(i, best), float64(w.power*share))
-		g.gainBy(k, m, &gain, r, inv)
+	if info.a > 0 {
+		r0 := info.inverse(m)
+		s := sym2{p.a + r0.a/w.power, p.b + r0.b/w.power, p.c + r0.c/w.power}
+		g.gainBy(k, m, &gain, r, s.inverse(m))
 	}
 	return float64(w.power * (most + kernel.Log(sum)))
 }
 
-// part returns the log of part c to the given power, marginalised over the
+// noise is the covariance of part c at a position.
+func (w *noiseWork) noise(c int, extra float64) sym2 {
+	cov := &w.parts[c].Cov
+	return sym2{cov[0] + extra, cov[1], cov[2] + extra}
+}
+
+// part returns the log of part c to the power β, marginalised over the
 // Gaussian (p is the variance of g(x)), without the part's weight; and the
 // inverse of the innovation covariance.
-func (w *noiseWork) part(c int, p sym2, r [2]float64, extra, power float64) (log float64, inv sym2) {
-	cov := w.parts[c].Cov
-	noise := sym2{cov[0] + extra, cov[1], cov[2] + extra}
-	s := sym2{p.a + noise.a/power, p.b + noise.b/power, p.c + noise.c/power}
-	log, inv = s.logNormal(w.m, r)
-	if power == 1 {
+func (w *noiseWork) part(c int, p sym2, r [2]float64, extra float64) (log float64, inv sym2) {
+	noise, beta := w.noise(c, extra), w.power
+	if beta == 1 {
+		s := sym2{p.a + noise.a, p.b + noise.b, p.c + noise.c}
+		log, inv = s.logNormal(w.m, r)
 		return log - w.logZ, inv
 	}
+	s := sym2{p.a + noise.a/beta, p.b + noise.b/beta, p.c + noise.c/beta}
+	log, inv = s.logNormal(w.m, r)
+	if noise != w.last[c] {
+		w.last[c], w.lastLog[c] = noise, noise.logDet(w.m)
+	}
 	// N(r;0,R)^β = N(r;0,R/β)·C with ln C = (1-β)·(ln sqrt((2π)^m |R|)) - (m/2) ln β.
-	logConst := float64((1-power)*(w.logZ+0.5*noise.logDet(w.m))) - 0.5*float64(w.m)*kernel.Log(power)
+	logConst := float64((1-beta)*(w.logZ+0.5*w.lastLog[c])) - 0.5*float64(w.m)*w.logBeta
 	return log - w.logZ + logConst, inv
 }
 

@@ -109,13 +109,13 @@ func (w *noiseWork) density(t *Terms, i int, within float64) float64 {
 		p.c = float64(within * (float64(row[2]*row[2]) + float64(row[3]*row[3])))
 	}
 	if len(w.parts) == 1 && math.IsInf(w.logFlat, -1) {
-		log, _ := w.part(0, p, r, t.Extra[i], w.power)
+		log, _ := w.part(0, p, r, t.Extra[i])
 		return float64(w.power*w.logW[0]) + log
 	}
 	var logs [maxParts]float64
 	most := w.logFlat
 	for c := range w.parts {
-		l, _ := w.part(c, p, r, t.ExtraOf(i, c), w.power)
+		l, _ := w.part(c, p, r, t.ExtraOf(i, c))
 		logs[c] = w.logW[c] + l/w.power
 		most = math.Max(most, logs[c])
 	}
