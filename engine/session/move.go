@@ -14,15 +14,18 @@ import (
 // a posterior's evidence.
 const roadSensor = "road"
 
-// move predicts the belief to t. A stretch of time that is measured in part is
-// cut where that changes, so that a gap is the same however other measurements
-// cut it.
+// move predicts the belief to a time. The stretch is cut where something that
+// measures the motion begins or ends, so that neither a gap nor what several
+// sensors say together depends on how other measurements cut it. Only a stride
+// that is measured all the way stays whole.
 func (s *Session) move(to sensor.Time) {
 	from := s.state.time
-	s.gather(from, to)
-	if gap := s.motion.GapS(); gap == 0 || gap == s.motion.Seconds() {
-		s.predict()
-		return
+	if stride := s.log.events[s.log.next].Time < to; stride {
+		s.gather(from, to)
+		if s.motion.GapS() == 0 {
+			s.predict()
+			return
+		}
 	}
 	s.cuts = append(s.cutsWithin(s.cuts[:0], from, to), to)
 	for _, cut := range s.cuts {
