@@ -5,6 +5,7 @@ go 1.26.0
 require (
 	github.com/apache/arrow-go/v18 v18.9.0
 	github.com/goccy/go-yaml v1.19.2
+	github.com/paulmach/orb v0.14.0
 	github.com/paulmach/osm v0.8.0
 	github.com/spf13/cobra v1.10.2
 	github.com/tidwall/rtree v1.10.0
@@ -35,7 +36,6 @@ require (
 	github.com/klauspost/compress v1.20.3 // indirect
 	github.com/klauspost/cpuid/v2 v2.4.2 // indirect
 	github.com/mattn/go-runewidth v0.0.30 // indirect
-	github.com/paulmach/orb v0.14.0 // indirect
 	github.com/paulmach/protoscan v0.2.1 // indirect
 	github.com/pierrec/lz4/v4 v4.1.33 // indirect
 	github.com/spf13/pflag v1.0.9 // indirect

@@ -132,7 +132,7 @@ func licenceOf(r requirement) (licence, notice string, err error) {
 		if strings.HasPrefix(upper, "NOTICE") {
 			notice = entry.Name()
 		}
-		if !strings.HasPrefix(upper, "LICENSE") && !strings.HasPrefix(upper, "LICENCE") && !strings.HasPrefix(upper, "COPYING") {
+		if !strings.HasPrefix(upper, "LICENSE") && !strings.HasPrefix(upper, "LICENCE") && !strings.HasPrefix(upper, "COPYING") && !strings.HasPrefix(upper, "UNLICENSE") {
 			continue
 		}
 		text, err := os.ReadFile(filepath.Join(module.Dir, entry.Name()))

@@ -7,6 +7,7 @@ import (
 	"encoding/csv"
 	"encoding/json"
 	"fmt"
+	"github.com/paulmach/orb"
 	"io"
 	"strconv"
 	"time"
@@ -123,9 +124,7 @@ func bestMass(p *summary.Posterior) float64 {
 
 func stamp(ns int64) string { return time.Unix(0, ns).UTC().Format(time.RFC3339Nano) }
 
-type coordinates [2]float64
-
-func lonLat(p geo.LonLat) coordinates {
+func lonLat(p geo.LonLat) orb.Point {
 	round := func(rad float64) float64 { // 8 decimals: about a millimetre
 		x, err := strconv.ParseFloat(strconv.FormatFloat(geo.Deg(rad), 'f', 8, 64), 64)
 		if err != nil {
@@ -133,12 +132,12 @@ func lonLat(p geo.LonLat) coordinates {
 		}
 		return x
 	}
-	return coordinates{round(p.Lon), round(p.Lat)}
+	return orb.Point{round(p.Lon), round(p.Lat)}
 }
 
 type geometry struct {
-	Type        string `json:"type"`
-	Coordinates any    `json:"coordinates"`
+	Type        string       `json:"type"`
+	Coordinates orb.Geometry `json:"coordinates"`
 }
 
 type feature struct {
@@ -155,30 +154,30 @@ func (t *Track) WriteGeoJSON(w io.Writer) error {
 	// Errors of the buffer come back from Flush.
 	_, _ = b.WriteString(`{"type":"FeatureCollection","features":[`)
 	enc, first := json.NewEncoder(b), true
-	put := func(kind string, coords any, properties map[string]any) error {
+	put := func(g orb.Geometry, properties map[string]any) error {
 		if !first {
 			_ = b.WriteByte(',')
 		}
 		first = false
-		return enc.Encode(feature{"Feature", properties, geometry{kind, coords}})
+		return enc.Encode(feature{"Feature", properties, geometry{g.GeoJSONType(), g}})
 	}
 	if len(t.Truth) > 1 {
-		line := make([]coordinates, len(t.Truth))
+		line := make(orb.LineString, len(t.Truth))
 		for i, at := range t.Truth {
 			line[i] = lonLat(at.At)
 		}
-		if err := put("LineString", line, map[string]any{"drive": t.Drive, "what": "truth"}); err != nil {
+		if err := put(line, map[string]any{"drive": t.Drive, "what": "truth"}); err != nil {
 			return err
 		}
 	}
 	for i := 0; i < len(t.Posteriors); {
 		j := i
-		var line []coordinates
+		var line orb.LineString
 		for ; j < len(t.Posteriors) && t.Posteriors[j].Status == t.Posteriors[i].Status; j++ {
 			line = append(line, lonLat(place(t.Posteriors[j])))
 		}
 		if len(line) > 1 {
-			if err := put("LineString", line, map[string]any{"drive": t.Drive, "what": "estimate", "status": t.Posteriors[i].Status.String()}); err != nil {
+			if err := put(line, map[string]any{"drive": t.Drive, "what": "estimate", "status": t.Posteriors[i].Status.String()}); err != nil {
 				return err
 			}
 		}
@@ -186,7 +185,7 @@ func (t *Track) WriteGeoJSON(w io.Writer) error {
 	}
 	for _, p := range t.Posteriors {
 		props := map[string]any{"time": stamp(p.TimeNS), "status": p.Status.String(), "radius95_m": p.Radius95M}
-		if err := put("Point", lonLat(place(p)), props); err != nil {
+		if err := put(lonLat(place(p)), props); err != nil {
 			return err
 		}
 	}
