@@ -289,7 +289,7 @@ func TestReadmeCommandLines(t *testing.T) {
 }
 
 // TestDevelopersMap: DEVELOPERS.md names every package of ours and every
-// module that our code or tests import.
+// module that our code or tests import, and every test that it names exists.
 func TestDevelopersMap(t *testing.T) {
 	page := readPage(t, "DEVELOPERS.md")
 	var modules []string
@@ -298,7 +298,8 @@ func TestDevelopersMap(t *testing.T) {
 			modules = append(modules, f[0])
 		}
 	}
-	used := map[string]bool{}
+	used, tests := map[string]bool{}, map[string]bool{}
+	test := regexp.MustCompile(`(?m)^func (Test[A-Za-z0-9_]+)\(`)
 	err := filepath.WalkDir(checkout, func(file string, e fs.DirEntry, err error) error {
 		if err != nil {
 			return err
@@ -317,7 +318,14 @@ func TestDevelopersMap(t *testing.T) {
 			return err
 		}
 		used[filepath.ToSlash(below)] = true
-		parsed, err := parser.ParseFile(token.NewFileSet(), file, nil, parser.ImportsOnly)
+		text, err := os.ReadFile(file)
+		if err != nil {
+			return err
+		}
+		for _, m := range test.FindAllSubmatch(text, -1) {
+			tests[string(m[1])] = true
+		}
+		parsed, err := parser.ParseFile(token.NewFileSet(), file, text, parser.ImportsOnly)
 		if err != nil {
 			return err
 		}
@@ -347,6 +355,11 @@ func TestDevelopersMap(t *testing.T) {
 		}
 		if !strings.Contains(page, "`"+name+"`") {
 			t.Errorf("DEVELOPERS.md does not name `%s`", name)
+		}
+	}
+	for _, m := range regexp.MustCompile("`(Test[A-Za-z0-9_]+)`").FindAllStringSubmatch(page, -1) {
+		if !tests[m[1]] {
+			t.Errorf("DEVELOPERS.md names %s, which does not exist", m[1])
 		}
 	}
 }
