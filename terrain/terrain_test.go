@@ -192,12 +192,28 @@ func TestVoidsAndEdges(t *testing.T) {
 		col, row float64
 		known    bool
 	}{
-		{9.5, 19.5, false}, {10.5, 19.5, false}, {9.5, 20.5, false}, {10.5, 20.5, false},
-		{8.9, 20, true}, {11.1, 20, true}, {10, 18.9, true}, {10, 21.1, true},
-		{0, 0, true}, {lastC, 0, true}, {0, lastR, true}, {lastC, lastR, true},
-		{0, 30.5, true}, {lastC, 30.5, true}, {40.5, 0, true}, {40.5, lastR, true},
-		{-0.01, 30, false}, {lastC + 0.01, 30, false}, {40, -0.01, false}, {40, lastR + 0.01, false},
-		{-5, 30, false}, {400, 3000, false},
+		{9.5, 19.5, false},
+		{10.5, 19.5, false},
+		{9.5, 20.5, false},
+		{10.5, 20.5, false},
+		{8.9, 20, true},
+		{11.1, 20, true},
+		{10, 18.9, true},
+		{10, 21.1, true},
+		{0, 0, true},
+		{lastC, 0, true},
+		{0, lastR, true},
+		{lastC, lastR, true},
+		{0, 30.5, true},
+		{lastC, 30.5, true},
+		{40.5, 0, true},
+		{40.5, lastR, true},
+		{-0.01, 30, false},
+		{lastC + 0.01, 30, false},
+		{40, -0.01, false},
+		{40, lastR + 0.01, false},
+		{-5, 30, false},
+		{400, 3000, false},
 	} {
 		if h := at(c.col, c.row); math.IsNaN(h) == c.known {
 			t.Errorf("column %v, row %v: height %v, want known %v", c.col, c.row, h, c.known)

@@ -152,15 +152,19 @@ func TestKalmanWithNuisances(t *testing.T) {
 			"line, odometer scale", func(part float64) filter.Space { return line(3000, 4/part) },
 			onLine{500, 20},
 			[]filter.Quantity{{Name: filter.Along}, {Name: filter.OdometerScale, PriorVar: 4e-4}},
-			[]float64{500}, []float64{400, 4e-4},
-			[]float64{1, 0}, []float64{144},
+			[]float64{500},
+			[]float64{400, 4e-4},
+			[]float64{1, 0},
+			[]float64{144},
 		},
 		{
 			"plane, heading offset and scale", func(part float64) filter.Space { return planeOfDetail(p, 4/math.Sqrt(part)) },
 			filter.AtPoint{Point: geo.Point{E: 100, N: -50}, SigmaM: 10},
 			[]filter.Quantity{{Name: filter.East}, {Name: filter.North}, {Name: filter.Heading, PriorVar: 1e-3}, {Name: filter.OdometerScale, PriorVar: 4e-4}},
-			[]float64{100, -50}, []float64{100, 100, 1e-3, 4e-4},
-			[]float64{1, 0.3, 0, 0, -0.2, 1, 0, 0}, []float64{144, 20, 225},
+			[]float64{100, -50},
+			[]float64{100, 100, 1e-3, 4e-4},
+			[]float64{1, 0.3, 0, 0, -0.2, 1, 0, 0},
+			[]float64{144, 20, 225},
 		},
 	} {
 		for _, part := range []float64{1, 1.5, 2} {

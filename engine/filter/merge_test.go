@@ -206,8 +206,10 @@ func TestTruncateAgainstIntegration(t *testing.T) {
 // rounding, the share of every cell within three and a half sigma exactly.
 func TestSplittingAgainstMixture(t *testing.T) {
 	for _, sigma := range []float64{0.51, 0.8, 2, 7} {
-		ln := &Lines{LengthM: []float64{400}, Cells: []int32{400}, WidthM: []float64{1},
-			Forward: Links{Start: []int32{0, 0}}, Backward: Links{Start: []int32{0, 0}}}
+		ln := &Lines{
+			LengthM: []float64{400}, Cells: []int32{400}, WidthM: []float64{1},
+			Forward: Links{Start: []int32{0, 0}}, Backward: Links{Start: []int32{0, 0}},
+		}
 		g := gaussian{mass: 0.4}
 		g.mean[0], g.cov[0] = 0.21, sigma*sigma
 		var out Gaussians

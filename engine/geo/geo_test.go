@@ -51,9 +51,11 @@ func TestGeodesicPublished(t *testing.T) {
 		wantM, azimuth float64 // azimuth in degrees
 	}{
 		{"GeographicLib documentation, GeodSolve (JFK to LHR)", WGS84, FromDegrees(-73.8, 40.6), FromDegrees(-0.5, 51.6), 5551759.400, 51.198883},
-		{"Geoscience Australia, Flinders Peak to Buninyong (GRS80)", GRS80,
+		{
+			"Geoscience Australia, Flinders Peak to Buninyong (GRS80)", GRS80,
 			FromDegrees(dms(144, 25, 29.52440), dms(-37, 57, 3.72030)), FromDegrees(dms(143, 55, 35.38390), dms(-37, 39, 10.15610)),
-			54972.271, dms(306, 52, 5.37)},
+			54972.271, dms(306, 52, 5.37),
+		},
 	} {
 		d, az, err := c.ell.Distance(c.p, c.q)
 		if err != nil || math.Abs(d-c.wantM) > 1.5e-3 || math.Abs(Deg(az)-c.azimuth) > 3e-6 {
@@ -108,8 +110,13 @@ func TestFromTrue(t *testing.T) {
 
 func TestWrap(t *testing.T) {
 	for _, c := range []struct{ in, pi, compass float64 }{
-		{0, 0, 0}, {math.Pi, -math.Pi, math.Pi}, {-math.Pi, -math.Pi, math.Pi},
-		{3 * math.Pi / 2, -math.Pi / 2, 3 * math.Pi / 2}, {-1e-320, -1e-320, 0}, {2 * math.Pi, 0, 0}, {-7, -7 + 2*math.Pi, -7 + 4*math.Pi},
+		{0, 0, 0},
+		{math.Pi, -math.Pi, math.Pi},
+		{-math.Pi, -math.Pi, math.Pi},
+		{3 * math.Pi / 2, -math.Pi / 2, 3 * math.Pi / 2},
+		{-1e-320, -1e-320, 0},
+		{2 * math.Pi, 0, 0},
+		{-7, -7 + 2*math.Pi, -7 + 4*math.Pi},
 	} {
 		if got := WrapPi(c.in); math.Abs(got-c.pi) > 1e-15*8 {
 			t.Errorf("WrapPi(%v) = %v, want %v", c.in, got, c.pi)

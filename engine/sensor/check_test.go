@@ -17,16 +17,23 @@ func good() []Measurement {
 	since := 99 * second
 	here := geo.FromDegrees(10, 50)
 	return []Measurement{
-		Travel{since, 5, 0.1}, Turn{since, 0.1, 0.01},
+		Travel{since, 5, 0.1},
+		Turn{since, 0.1, 0.01},
 		Displacement{since, 3, 4, [3]float64{1, 0.2, 1}},
 		BodyDisplacement{since, 5, 0.1, 0.1, 0.1, 0.1, 0.01},
-		Speed{MPS: 3, SigmaMPS: 0.1}, Speed{MPS: 3, SigmaMPS: 0.1, HasCourse: true, CourseRad: 1},
-		HeadingFix{1, 0.1}, Clearance{100, 500, 3},
+		Speed{MPS: 3, SigmaMPS: 0.1},
+		Speed{MPS: 3, SigmaMPS: 0.1, HasCourse: true, CourseRad: 1},
+		HeadingFix{1, 0.1},
+		Clearance{100, 500, 3},
 		Sounding{DepthBelowTransducerM: 30, TransducerDepthM: 1, SigmaM: 0.3, Beams: []Beam{{10, 0, 31, 0.3}}},
-		Barometer{AltitudeM: 100, SigmaM: 3}, Barometer{HasPressure: true, PressureHPa: 1000, SigmaM: 3},
-		Range{Beacon{Position: here}, 100, 5}, Bearing{Beacon{Position: here}, 1, 0.1},
-		AcousticBearing{"post", 1, 0.1}, Fix{here, 5},
-		Sighting{Road: "High Street", Mistaken: 0.1}, Standstill{},
+		Barometer{AltitudeM: 100, SigmaM: 3},
+		Barometer{HasPressure: true, PressureHPa: 1000, SigmaM: 3},
+		Range{Beacon{Position: here}, 100, 5},
+		Bearing{Beacon{Position: here}, 1, 0.1},
+		AcousticBearing{"post", 1, 0.1},
+		Fix{here, 5},
+		Sighting{Road: "High Street", Mistaken: 0.1},
+		Standstill{},
 		Sighting{Area: [][]geo.LonLat{{here, geo.FromDegrees(10.1, 50), geo.FromDegrees(10, 50.1)}}, Mistaken: 0.1},
 	}
 }

@@ -284,8 +284,12 @@ func TestPower(t *testing.T) {
 		heading          bool
 		want             float64
 	}{
-		{math.Inf(1), math.Inf(1), true, 1}, {5, 100, true, 1}, {0.01, 0.1, true, 0.01},
-		{0.01, 0.1, false, 0.01}, {0.5, 0.5, false, 0.1}, {1, 0, false, 1e-6},
+		{math.Inf(1), math.Inf(1), true, 1},
+		{5, 100, true, 1},
+		{0.01, 0.1, true, 0.01},
+		{0.01, 0.1, false, 0.01},
+		{0.5, 0.5, false, 0.1},
+		{1, 0, false, 1e-6},
 	} {
 		ctx := w.context(1, qs, geo.Point{})
 		if !c.heading {

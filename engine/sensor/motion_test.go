@@ -31,7 +31,9 @@ func step(t *testing.T, s *Suite, to Time, qs []filter.Quantity, dim int, pose P
 func TestSplitAddsUp(t *testing.T) {
 	at, since := 10*second, 4*second
 	for _, m := range []Measurement{
-		Travel{since, 12, 0.3}, Turn{since, 0.5, 0.1}, Displacement{since, 3, -4, [3]float64{2, 0.5, 1}},
+		Travel{since, 12, 0.3},
+		Turn{since, 0.5, 0.1},
+		Displacement{since, 3, -4, [3]float64{2, 0.5, 1}},
 		BodyDisplacement{since, 12, 1, 0.5, 0.3, 0.2, 0.1},
 	} {
 		sum := make([]float64, 6)

@@ -138,7 +138,6 @@ func (s *Summarizer) needle(mass, w, v, is, sigma float64) {
 // of the active pieces.
 
 func (s *Summarizer) outside(r float64) float64 {
-
 	sum := s.beyond
 	t := s.tables
 	for i := range s.activeDiscs {

@@ -127,8 +127,10 @@ func (k geoKeys) crs() (terrain.CRS, error) {
 	if m, ok := k.code[keyMethod]; !ok || m != methodTM {
 		return terrain.CRS{}, fmt.Errorf("key %d: projection method %d is not supported, only transverse Mercator (1): %s", keyMethod, m, todo)
 	}
-	tm := terrain.TM{LonDeg: k.num[keyNatOriginLon], LatDeg: k.num[keyNatOriginLat], Scale: 1,
-		FalseEastM: k.num[keyFalseEasting], FalseNorthM: k.num[keyFalseNorthing], GRS80: base.Shifted()}
+	tm := terrain.TM{
+		LonDeg: k.num[keyNatOriginLon], LatDeg: k.num[keyNatOriginLat], Scale: 1,
+		FalseEastM: k.num[keyFalseEasting], FalseNorthM: k.num[keyFalseNorthing], GRS80: base.Shifted(),
+	}
 	if s, ok := k.num[keyScale]; ok {
 		tm.Scale = s
 	}

@@ -51,8 +51,10 @@ func readNetCDF(r io.ReaderAt, size int64, _ string, opt Options) (*raw, error) 
 	if err != nil {
 		return nil, err
 	}
-	out.grid = terrain.Grid{Cols: int(cols), Rows: int(rows), FirstX: min(x.first, x.last), FirstY: max(y.first, y.last),
-		StepX: math.Abs(x.last-x.first) / float64(cols-1), StepY: -math.Abs(y.last-y.first) / float64(rows-1)}
+	out.grid = terrain.Grid{
+		Cols: int(cols), Rows: int(rows), FirstX: min(x.first, x.last), FirstY: max(y.first, y.last),
+		StepX: math.Abs(x.last-x.first) / float64(cols-1), StepY: -math.Abs(y.last-y.first) / float64(rows-1),
+	}
 	if axes[north].degrees {
 		out.grid.CRS = terrain.LonLat()
 		if opt.CRS.IsZero() {
@@ -101,9 +103,11 @@ func readNetCDF(r io.ReaderAt, size int64, _ string, opt Options) (*raw, error) 
 
 // heightNames are names of variables and CF standard names that hold heights,
 // for files with several variables over the same axes.
-var heightNames = []string{"z", "elevation", "height", "altitude", "topo", "topography", "dem", "orog", "bathymetry", "depth", "data", "band1",
+var heightNames = []string{
+	"z", "elevation", "height", "altitude", "topo", "topography", "dem", "orog", "bathymetry", "depth", "data", "band1",
 	"surface_altitude", "height_above_reference_ellipsoid", "height_above_mean_sea_level", "bedrock_altitude",
-	"sea_floor_depth_below_geoid", "sea_floor_depth_below_mean_sea_level", "sea_floor_depth_below_reference_ellipsoid"}
+	"sea_floor_depth_below_geoid", "sea_floor_depth_below_mean_sea_level", "sea_floor_depth_below_reference_ellipsoid",
+}
 
 // pick finds the variable with heights, and its axes by dimension.
 func (f *netCDF) pick(opt Options) (*ncVar, map[int]ncAxis, error) {

@@ -36,8 +36,10 @@ func Write(path string, r *terrain.Raster) (err error) {
 	if err := writeTo(f, r); err != nil {
 		return fail(err)
 	}
-	for _, step := range []func() error{func() error { return f.Chmod(0o644) }, f.Sync, f.Close,
-		func() error { return os.Rename(f.Name(), path) }} {
+	for _, step := range []func() error{
+		func() error { return f.Chmod(0o644) }, f.Sync, f.Close,
+		func() error { return os.Rename(f.Name(), path) },
+	} {
 		if err := step(); err != nil {
 			return fail(err)
 		}

@@ -7,10 +7,11 @@ import (
 	"encoding/csv"
 	"encoding/json"
 	"fmt"
-	"github.com/paulmach/orb"
 	"io"
 	"strconv"
 	"time"
+
+	"github.com/paulmach/orb"
 
 	"leadline/engine/geo"
 	"leadline/engine/study/score"
