@@ -73,7 +73,8 @@ func TransverseMercator(p TM) (CRS, error) {
 // 32601–32660 and 32701–32760 (WGS 84 / UTM), 25828–25838 (ETRS89 / UTM) and
 // 26901–26923 (NAD83 / UTM).
 func FromEPSG(code int) (CRS, error) {
-	zone, south, grs80 := 0, false, false
+	var zone int
+	var south, grs80 bool
 	switch {
 	case code == 4326:
 		return LonLat(), nil

@@ -216,7 +216,7 @@ func (f *Feed) receive() {
 	for {
 		m, err := f.stream.Recv()
 		switch {
-		case err == io.EOF:
+		case errors.Is(err, io.EOF):
 			if f.closed == nil {
 				f.err = errors.New("client: the server ended the stream without a word")
 			}

@@ -25,7 +25,7 @@ func records(t *testing.T, data []byte) []*Record {
 	var recs []*Record
 	for r := NewReader(bytes.NewReader(data), "test"); ; {
 		rec, err := r.Read()
-		if err == io.EOF {
+		if errors.Is(err, io.EOF) {
 			return recs
 		}
 		if err != nil {

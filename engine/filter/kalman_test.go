@@ -76,7 +76,7 @@ func (l linear) Linearize(t *filter.Terms, at *filter.Columns, qs []filter.Quant
 		for a := range m {
 			g := 0.0
 			for j := range k {
-				x := 0.0
+				var x float64
 				switch {
 				case j >= dim:
 					x = mean[i*k+j]

@@ -18,7 +18,6 @@ type tileSpace struct {
 	spare Tiles
 	index map[TileAt]int32
 	taps  taps
-	order []int32
 }
 
 // tile returns the masses of tile i.

@@ -2,6 +2,7 @@ package server
 
 import (
 	"context"
+	"errors"
 	"io"
 	"time"
 
@@ -80,7 +81,7 @@ func (s *Server) first(ctx context.Context, requests <-chan received) (*leadline
 	defer late.Stop()
 	select {
 	case r := <-requests:
-		if r.err == io.EOF {
+		if errors.Is(r.err, io.EOF) {
 			return nil, status.Error(codes.InvalidArgument, "the stream ended without a message: send open first")
 		}
 		if r.err != nil {

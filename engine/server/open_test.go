@@ -1,6 +1,7 @@
 package server
 
 import (
+	"errors"
 	"io"
 	"math"
 	"strings"
@@ -97,7 +98,7 @@ func TestLimits(t *testing.T) {
 	wantStatus(t, "a third vehicle", err, codes.ResourceExhausted, "its 2 vehicles")
 
 	big := voyage(8, 200)
-	if err := b.Send(batch(1, big...)); err != nil && err != io.EOF {
+	if err := b.Send(batch(1, big...)); err != nil && !errors.Is(err, io.EOF) {
 		t.Fatal(err)
 	}
 	wantStatus(t, "a message too large", ends(b), codes.ResourceExhausted, "larger than max (")
@@ -119,7 +120,7 @@ func TestLimits(t *testing.T) {
 	if err := a.Send(ending); err != nil {
 		t.Fatal(err)
 	}
-	if err := ends(a); err != io.EOF {
+	if err := ends(a); !errors.Is(err, io.EOF) {
 		t.Errorf("the vehicle with a stream: %v", err)
 	}
 }

@@ -1,6 +1,7 @@
 package server
 
 import (
+	"errors"
 	"fmt"
 	"io"
 	"math"
@@ -68,7 +69,7 @@ func TestOthersGoOn(t *testing.T) {
 	if err := slow.Send(ending); err != nil {
 		t.Fatal(err)
 	}
-	if err := ends(slow); err != io.EOF {
+	if err := ends(slow); !errors.Is(err, io.EOF) {
 		t.Errorf("the slow one: %v", err)
 	}
 }

@@ -25,7 +25,7 @@ func readHGT(r io.ReaderAt, size int64, name string, opt Options) (*raw, error) 
 	if !ok {
 		return nil, fmt.Errorf("the name does not give the tile's south-west corner: call it like N10W062.hgt")
 	}
-	n := 0
+	var n int
 	switch size {
 	case 1201 * 1201 * 2:
 		n = 1201

@@ -128,7 +128,7 @@ func checkSums(data []byte, l *layout, items metaItems) error {
 func restore(t *tiff, l *layout, items metaItems, data []byte) (*terrain.Raster, error) {
 	f := &raw{}
 	if flip, err := t.georeference(f, l); err != nil || flip {
-		return nil, fmt.Errorf("%w: its place is not readable (%v)", ErrDamaged, err)
+		return nil, fmt.Errorf("%w: its place is not readable (%w)", ErrDamaged, err)
 	}
 	f.meta = terrain.Meta{VerticalDatum: items.name(itemDatum), Source: items.name(itemSource), Licence: items.name(itemLicence)}
 	var scan terrain.Scan

@@ -14,7 +14,7 @@ import (
 // company they are sampled in, and are written to the caller's slices alone.
 func Space(t *testing.T, space filter.Space) {
 	t.Helper()
-	if space.Fingerprint() == "" || space.Fingerprint() != space.Fingerprint() {
+	if first := space.Fingerprint(); first == "" || space.Fingerprint() != first {
 		t.Error("the fingerprint is empty or changes")
 	}
 	if space.Frame().IsZero() {
