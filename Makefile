@@ -71,8 +71,7 @@ format-check:
 
 SOURCES = $(wildcard cmd engine fixtures network proto terrain tools)
 
-# vet looks at the code for arm64, too, where plain Go stands in for the vector
-# code.
+# vet looks at the code for arm64, too, where products and sums could fuse.
 vet:
 	$(GO) vet ./...
 	GOARCH=arm64 $(GO) vet ./engine/kernel/... ./engine/filter/...

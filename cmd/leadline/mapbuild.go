@@ -73,7 +73,7 @@ func mapRoadsCommand() *cobra.Command {
 	f.BoolVar(&o.SkipPrivate, "skip-private", false, "leave out roads with access=no or access=private")
 	f.Int64Var(&o.MaxBytes, "max-bytes", 4<<30, "refuse larger files")
 	f.Float64Var(&maxKM, "max-km", 2e5, "refuse maps with more kilometres of directed edges")
-	f.StringVar(&o.Map.Source, "source", "", "where the roads come from (default: what the file says, or its name)")
+	f.StringVar(&o.Map.Source, "source", "", "where the roads come from (default: the name of the file)")
 	f.StringVar(&o.Map.Licence, "licence", "", "licence of the roads (default: what the file says)")
 	return c
 }

@@ -22,7 +22,7 @@ type Belief struct {
 
 	// Counts since the belief was seeded, as fractions of the whole mass.
 	Pruned  float64 // too little to carry on
-	LeftMap float64 // went over an end that leads nowhere, or off the raster
+	LeftMap float64 // went over the end of a line that leads nowhere
 }
 
 // Gaussians are the columns of a belief, one entry a Gaussian, in ascending

@@ -1,5 +1,5 @@
-// Package kernel holds the inner loops over slices and every transcendental
-// function that a posterior depends on.
+// Package kernel holds every transcendental function that a posterior depends
+// on.
 //
 // The standard library's Exp and its relatives choose an implementation by
 // CPU (fused multiply-add or not), so the same drive could give different

@@ -42,7 +42,6 @@ type collector struct {
 	features []string
 	lines    []line
 	bans     []ban
-	source   string
 	licence  string
 	byPlace  map[[2]int64]nodeList
 }

@@ -11,8 +11,8 @@ import (
 
 // Options say how a road map is read. The zero value is useful.
 type Options struct {
-	// Map says how the roads become a map. Empty Source and Licence are filled
-	// from the file, where it states them.
+	// Map says how the roads become a map. An empty Licence is filled from the
+	// file, where it states one.
 	Map network.Options
 	// JoinM is how near an end must come to another line to be joined to it,
 	// in metres; 0 means 0.5 m, a negative value joins nothing.

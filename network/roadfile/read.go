@@ -60,9 +60,6 @@ func ReadFrom(r io.ReadSeeker, opt Options) (*network.Map, Notes, error) {
 		return nil, c.notes, err
 	}
 	o := c.opt.Map
-	if o.Source == "" {
-		o.Source = c.source
-	}
 	if o.Licence == "" {
 		o.Licence = c.licence
 	}
