@@ -65,12 +65,12 @@ func straight(lengthM float64) town {
 }
 
 // winding is a road of gentle bends.
-func winding() town {
+func winding(cellM float64) town {
 	var arcs []filtertest.Arc
 	for i := range 16 {
 		arcs = append(arcs, filtertest.Arc{LengthM: 25, Curvature: []float64{0, 0.006, -0.004, -0.006, 0.005}[i%5]})
 	}
-	return town{filtertest.NewRoad(1, []filtertest.Course{{HeadingRad: 0.2, Arcs: arcs}}, [][]filtertest.Link{nil}), []string{"Winding Lane"}}
+	return town{filtertest.NewRoad(cellM, []filtertest.Course{{HeadingRad: 0.2, Arcs: arcs}}, [][]filtertest.Link{nil}), []string{"Winding Lane"}}
 }
 
 var seaOrigin = geo.FromDegrees(10, 50)
@@ -271,4 +271,24 @@ func (c *car) speeds(name string, first, step, end float64) {
 		v := (c.along(to+0.05) - c.along(to-0.05)) / 0.1
 		c.put(to, name, sensor.Speed{MPS: v + 0.2*c.rng.NormFloat64(), SigmaMPS: 0.2})
 	})
+}
+
+// charted is the point at a distance along the first chart.
+func (t town) charted(alongM float64) geo.Point {
+	p, _, _ := t.At(0, alongM)
+	return p
+}
+
+// alongVar is the variance of a posterior along the first chart at its mean.
+func alongVar(t town, p *summary.Posterior) float64 {
+	nearest, best := 0.0, math.Inf(1)
+	for s := 0.0; s < t.LengthM[0]; s += 0.5 {
+		if d := t.charted(s).Sub(p.MeanFrame).Norm(); d < best {
+			nearest, best = s, d
+		}
+	}
+	_, h, _ := t.At(0, nearest)
+	e, n := math.Sincos(h)
+	c := p.CovFrame
+	return e*e*c.EE + 2*e*n*c.EN + n*n*c.NN
 }
