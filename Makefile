@@ -14,7 +14,7 @@ FUZZ_TIME ?= 60s
 # the code. A tree may be named before it exists.
 RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/journal/... ./cmd/...
 
-.PHONY: build test race fuzz bench fetch generate generate-check format \
+.PHONY: build test race fuzz bench fetch fetch-arrow generate generate-check format \
 	format-check vet lint lint-only vuln licences licences-check clean
 
 # build makes one static binary.
@@ -40,9 +40,14 @@ fuzz:
 bench:
 	$(GO) test -run '^$$' -bench . -benchmem ./...
 
-# fetch brings outside data for the tests; see DATA.md.
-fetch:
+# fetch brings outside data for the tests, see DATA.md, and the library that
+# reads a compiled road map a second time.
+fetch: fetch-arrow
 	$(GO) run ./fixtures/outside/fetch
+
+ARROW_JS = apache-arrow@21.2.0
+fetch-arrow:
+	npm install --silent --no-audit --no-fund --no-save --prefix build/outside $(ARROW_JS)
 
 # generate writes the Go code of the API beside its .proto files.
 generate:
