@@ -2,6 +2,7 @@ package session
 
 import (
 	"fmt"
+	"math"
 	"reflect"
 	"slices"
 
@@ -72,6 +73,9 @@ func (s *Session) add(ev sensor.Event) ([]*summary.Posterior, error) {
 	if _, err := sensor.Likelihoods(ev, s.context(ev)); err != nil {
 		return nil, &Refusal{Unusable, err.Error()}
 	}
+	if err := s.plausible(ev); err != nil {
+		return nil, err
+	}
 	i, found := s.log.find(ev)
 	if found {
 		if reflect.DeepEqual(s.log.events[i].Measurement, ev.Measurement) {
@@ -109,6 +113,38 @@ func (s *Session) add(ev sensor.Event) ([]*summary.Posterior, error) {
 	}
 	out := s.run(false)
 	return append(out, s.relieve()...), nil
+}
+
+// tooFast is how many times max_speed_mps no vehicle goes.
+const tooFast = 10
+
+// plausible refuses a motion on roads that no vehicle makes: following it
+// would lead through every way of a map many times over.
+func (s *Session) plausible(ev sensor.Event) error {
+	if s.dim != 1 {
+		return nil
+	}
+	since, _ := sensor.Since(ev.Measurement)
+	span := ev.Time.Seconds(since)
+	var d, sigma float64
+	switch m := ev.Measurement.(type) {
+	case sensor.Travel:
+		d, sigma = m.DistanceM, m.SigmaM
+	case sensor.BodyDisplacement:
+		d, sigma = math.Max(math.Abs(m.ForwardM), math.Abs(m.RightM)), m.SigmaForwardM
+	case sensor.Displacement:
+		d, sigma = math.Max(math.Abs(m.EastM), math.Abs(m.NorthM)), math.Sqrt(m.CovM2[0]+m.CovM2[2])
+	case sensor.Speed:
+		d, sigma, span = m.MPS, m.SigmaMPS, 1
+	default:
+		return nil
+	}
+	// 100 m more, for increments of a few milliseconds.
+	if most := tooFast*s.suite.Vehicle.MaxSpeedMPS*span + 100; math.Abs(d) > most || sigma > most {
+		return &Refusal{Unusable, fmt.Sprintf("sensor %q: %s: %.0f m with a sigma of %.0f m in %.3f s is beyond %d times the suite's max_speed_mps, %g: check its unit, leave out what tells nothing, or raise max_speed_mps",
+			ev.Sensor, ev.Measurement.Kind(), d, sigma, span, tooFast, s.suite.Vehicle.MaxSpeedMPS)}
+	}
+	return nil
 }
 
 // affects returns the time from which on an event changes the belief. An

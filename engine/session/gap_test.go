@@ -140,3 +140,68 @@ func TestGapsAreCutAtTheirEnds(t *testing.T) {
 		}
 	}
 }
+
+// TestLongGaps measures nothing for 100 s, and takes increments with a large
+// spread or length, over a small town of loops and over open water: the belief
+// spreads over all of it at a bounded cost, and finds back with a fix.
+func TestLongGaps(t *testing.T) {
+	town, water := crossing(), sea()
+	f := func(c Config, s float64, n uint64) sensor.Event {
+		p := c.Start.Point
+		return sensor.Event{Time: at(s), Sensor: "gps", Number: n, Measurement: sensor.Fix{Position: p, SigmaM: 3}}
+	}
+	roads := Config{Space: town, Names: town, Start: pointStart(town, town.charted(60), 10)}
+	open1 := Config{Space: water, Start: pointStart(water, geo.Point{}, 10), MaxCells: 20000}
+	for _, c := range []struct {
+		name   string
+		config Config
+		m      sensor.Measurement // over 100 s
+	}{
+		{"roads", roads, nil},
+		{"roads spread", roads, sensor.Travel{Since: at(0), SigmaM: 2000}},
+		{"roads far", roads, sensor.Travel{Since: at(0), DistanceM: 3000, SigmaM: 1}},
+		{"water", open1, nil},
+		{"water spread", open1, sensor.Displacement{Since: at(0), CovM2: [3]float64{1e15, 0, 1e14}}},
+	} {
+		t.Run(c.name, func(t *testing.T) {
+			s := open(t, c.config)
+			events := []sensor.Event{f(c.config, 0, 0)}
+			if c.m != nil {
+				events = append(events, sensor.Event{Time: at(100), Sensor: "odo", Measurement: c.m})
+			}
+			events = append(events, everywhere(c.config.Space.Frame(), 100, 1), f(c.config, 100.001, 1))
+			o := feed(t, s, events)
+			gap, back := o.posteriors[1], o.posteriors[2]
+			wide := math.Sqrt(gap.CovFrame.EE + gap.CovFrame.NN)
+			// The ways cover an area of some 150 m by 250 m: uniform over that
+			// is a spread of 84 m.
+			switch c.name {
+			case "roads", "roads spread":
+				if wide < 50 {
+					t.Errorf("after 100 s without motion a spread of %.0f m", wide)
+				}
+			case "water":
+				if w := math.Sqrt(2 * ouUnknown(400, gapTau, 100)); math.Abs(wide/w-1) > 0.01 {
+					t.Errorf("a spread of %.0f m, want %.0f", wide, w)
+				}
+			case "water spread":
+				if math.Abs(wide/math.Sqrt(1.1e15)-1) > 0.01 {
+					t.Errorf("a spread of %.3g m, want %.3g", wide, math.Sqrt(1.1e15))
+				}
+			}
+			if back.CovFrame.EE+back.CovFrame.NN >= gap.CovFrame.EE+gap.CovFrame.NN && c.name != "roads far" {
+				t.Errorf("a fix leaves %v of %v", back.CovFrame, gap.CovFrame)
+			}
+			if n := s.Size(); n > 100000 {
+				t.Errorf("%d cells", n)
+			}
+		})
+	}
+}
+
+// ouUnknown is the variance of a displacement whose velocity was unknown at
+// the start: w·tau²·2(x - 1 + e^-x), x = s/tau.
+func ouUnknown(w, tau, s float64) float64 {
+	x := s / tau
+	return 2 * w * tau * tau * (x - 1 + math.Exp(-x))
+}

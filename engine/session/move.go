@@ -112,7 +112,7 @@ func (s *Session) predict() {
 	if err != nil {
 		panic(fmt.Sprintf("session: %v", err)) // Supports refuses what a step cannot take
 	}
-	filter.Predict(st.belief, s.space, step, &s.work)
+	s.spread(step)
 	travelledM := m.TravelledM()
 	st.odometerM += travelledM
 	if gap := m.GapS(); gap > 0 {
@@ -131,6 +131,89 @@ func (s *Session) predict() {
 	if l := s.followsRoad(travelledM); l != nil {
 		s.weigh(sensor.Event{Sensor: roadSensor, Measurement: sensor.Turn{}}, l)
 	}
+}
+
+// A step that would make a belief much wider is taken in parts, with the
+// resolution adapted between them. At the fine spacing of a located belief a
+// long gap would fill millions of cells of a lattice; it is spread by at most
+// maxWidening of its own scale at once. On lines each Gaussian of a wide spread
+// would follow every way through many junctions, whose number grows
+// exponentially; in parts of partM, some three of which reach over a block of
+// houses, the ways meet and merge. The parts add up to the whole, but for a
+// spread on lines beyond sqrt(maxParts)·2·partM (5.4 km, after some half an
+// hour without any event), which is taken as that.
+const (
+	maxWidening = 2.0
+	partM       = 30.0
+	fewParts    = 512 // beyond, they are up to twice as long
+	maxParts    = 8192
+	partShiftM  = 50.0
+)
+
+// spread predicts the belief by a step.
+func (s *Session) spread(step filter.Step) {
+	b := s.state.belief
+	if s.lines != nil {
+		step.Q[0] = math.Min(step.Q[0], maxParts*4*partM*partM)
+	}
+	whole := step.Local != nil || s.lines == nil && len(b.Quantities) > 0
+	for left := 1.0; ; {
+		share := left
+		if !whole {
+			share = math.Min(left, s.share(step))
+		}
+		filter.Predict(b, s.space, portion(step, share), &s.work)
+		if share == left {
+			return
+		}
+		left -= share
+		if s.lines != nil { // now wide: coarse cells do, until adapt refines them
+			for step.Q[0] > partM*partM && b.Level < s.lines.Levels()-1 && s.cellsM[b.Level+1] <= partM/2 {
+				filter.Relevel(b, s.lines, b.Level+1, &s.work)
+			}
+			continue
+		}
+		for range maxAdaptations {
+			if !filter.Adapt(b, s.maxCells, &s.work) {
+				break
+			}
+		}
+	}
+}
+
+// maxAdaptations bounds the halvings or doublings of a spacing at one time.
+const maxAdaptations = 64
+
+// share is how much of a step may be taken at once.
+func (s *Session) share(step filter.Step) float64 {
+	if s.lines != nil {
+		part := min(max(partM*partM, step.Q[0]/fewParts), 4*partM*partM)
+		return math.Min(part/step.Q[0], partShiftM/math.Abs(step.Add[0]))
+	}
+	scale := maxWidening * s.state.belief.ScaleM()
+	return scale * scale / math.Max(step.Q[0], step.Q[2])
+}
+
+// portion is a part of a step. What F does to the positions comes from
+// quantities that it leaves alone, so that parts of F - I add up as well.
+func portion(step filter.Step, share float64) filter.Step {
+	if share == 1 {
+		return step
+	}
+	k := len(step.Add)
+	part := filter.NewStep(k)
+	for i, v := range step.Add {
+		part.Add[i] = share * v
+	}
+	for i, v := range step.Q {
+		part.Q[i] = share * v
+	}
+	for i, v := range step.F {
+		if row, col := i/k, i%k; row != col && v != 0 {
+			part.SetF(row, col, share*v)
+		}
+	}
+	return part
 }
 
 // followsRoad is what the last motion says about the road's direction; nil on

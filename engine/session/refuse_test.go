@@ -67,6 +67,8 @@ func TestRefusals(t *testing.T) {
 		{"travel on water", onWater, of(sensor.Travel{Since: at(10), DistanceM: 1, SigmaM: 1}), WrongSpace, []string{"travel", "declare the sensor"}},
 		{"barometer on water", onWater, of(sensor.Barometer{AltitudeM: 1, SigmaM: 1}), WrongSpace, []string{"barometer", "clearance"}},
 		{"road on water", onWater, of(sensor.Sighting{Road: "Long Street"}), WrongSpace, []string{"no roads", "area"}},
+		{"kilometres", onRoad, of(sensor.Travel{Since: at(10), DistanceM: 4e7, SigmaM: 1}), Unusable, []string{"40000000 m", "0.500 s", "max_speed_mps"}},
+		{"tells nothing", onRoad, of(sensor.Speed{SigmaMPS: 5000}), Unusable, []string{"sigma of 5000 m", "leave out"}},
 		{"nothing", onRoad, of(nil), Unusable, []string{`"x"`, "no measurement"}},
 		{"NaN", onRoad, of(sensor.Travel{Since: at(10.4), DistanceM: math.NaN(), SigmaM: 1}), Unusable, []string{"distance_m is NaN"}},
 		{"infinite", onRoad, of(sensor.HeadingFix{HeadingRad: math.Inf(1), SigmaRad: 1}), Unusable, []string{"heading", "+Inf"}},
