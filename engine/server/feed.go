@@ -156,7 +156,7 @@ func (s *Server) carry(ctx context.Context, stream feedStream, requests <-chan r
 // request turns a message into work.
 func request(r received) (work, error) {
 	switch {
-	case r.err == io.EOF:
+	case errors.Is(r.err, io.EOF):
 		return work{hangup: true}, nil
 	case r.err != nil:
 		return work{}, r.err

@@ -44,7 +44,7 @@ func TestWrongOrder(t *testing.T) {
 			st, _ = openRaw(t, conn, &leadlinev1.Open{Header: header(fmt.Sprint("v", i)), Drive: "d"})
 		}
 		for _, m := range c.send {
-			if err := st.Send(m); err != nil && err != io.EOF {
+			if err := st.Send(m); err != nil && !errors.Is(err, io.EOF) {
 				t.Fatal(err)
 			}
 		}
@@ -55,7 +55,7 @@ func TestWrongOrder(t *testing.T) {
 	if err := st.Send(ending); err != nil {
 		t.Fatal(err)
 	}
-	if err := ends(st); err != io.EOF {
+	if err := ends(st); !errors.Is(err, io.EOF) {
 		t.Errorf("after the end: %v", err)
 	}
 	st, _ = openRaw(t, conn, &leadlinev1.Open{Header: header("v"), Drive: "d"})
@@ -80,7 +80,7 @@ func TestWrongOrder(t *testing.T) {
 	if err := st.CloseSend(); err != nil {
 		t.Fatal(err)
 	}
-	if err := ends(st); err != io.EOF {
+	if err := ends(st); !errors.Is(err, io.EOF) {
 		t.Errorf("a stream without an end ended with %v", err)
 	}
 	if _, o := openRaw(t, conn, &leadlinev1.Open{Header: header("w"), Drive: "d"}); o.GetSequence() != 2 {

@@ -31,15 +31,15 @@ func TestRefusals(t *testing.T) {
 				t.Fatal(err)
 			}
 		}
-		s.Add(fixAt(9.95, "gps"))
-		s.Add(fixAt(11, "gps"))
+		mustAdd(t, s, fixAt(9.95, "gps"))
+		mustAdd(t, s, fixAt(11, "gps"))
 		return s
 	}
 	onWater := func(t *testing.T) *Session {
 		p := sea()
 		s := open(t, Config{Space: p, Start: pointStart(p, geo.Point{}, 50), MaxCells: 2000})
 		for i := range 12 {
-			s.Add(sensor.Event{Time: at(float64(i)), Sensor: "gps", Measurement: sensor.Fix{Position: seaOrigin, SigmaM: 10}})
+			mustAdd(t, s, sensor.Event{Time: at(float64(i)), Sensor: "gps", Measurement: sensor.Fix{Position: seaOrigin, SigmaM: 10}})
 		}
 		return s
 	}
@@ -119,7 +119,7 @@ func TestJustInTime(t *testing.T) {
 	for _, d := range []sensor.Time{0, 1} {
 		s := open(t, Config{Space: p, Start: pointStart(p, geo.Point{}, 50), MaxCells: 2000})
 		for i := range 12 {
-			s.Add(sensor.Event{Time: at(float64(i)), Sensor: "gps", Measurement: sensor.Fix{Position: seaOrigin, SigmaM: 10}})
+			mustAdd(t, s, sensor.Event{Time: at(float64(i)), Sensor: "gps", Measurement: sensor.Fix{Position: seaOrigin, SigmaM: 10}})
 		}
 		// 11 s waits; 9 s has been computed, hold_s being 1 s.
 		_, err := s.Add(sensor.Event{Time: at(7) - d, Sensor: "other", Measurement: sensor.Fix{Position: seaOrigin, SigmaM: 10}})
@@ -203,15 +203,15 @@ func TestContradiction(t *testing.T) {
 				return sensor.Event{Time: at(s), Sensor: "gps", Measurement: sensor.Fix{Position: f.Inverse(geo.Point{E: 10, N: 32}), SigmaM: 10}}
 			}
 			for _, s := range []*Session{with, without} {
-				s.Add(fix(0))
-				s.Add(fix(1))
+				mustAdd(t, s, fix(0))
+				mustAdd(t, s, fix(1))
 				if s == with {
 					if _, err := s.Add(sensor.Event{Time: at(1), Sensor: "who", Measurement: c.impossible}); err != nil {
 						t.Fatal(err)
 					}
 				}
-				s.Add(fix(2))
-				s.Add(fix(3)) // 1 s is computed
+				mustAdd(t, s, fix(2))
+				mustAdd(t, s, fix(3)) // 1 s is computed
 			}
 			p, q := with.Latest(), without.Latest()
 			if p.TimeNS != int64(at(1)) || len(p.Evidence) != 2 || len(q.Evidence) != 1 {
@@ -230,5 +230,12 @@ func TestContradiction(t *testing.T) {
 				t.Errorf("what followed was not taken: %+v", with.Latest().Evidence)
 			}
 		})
+	}
+}
+
+func mustAdd(t *testing.T, s *Session, ev sensor.Event) {
+	t.Helper()
+	if _, err := s.Add(ev); err != nil {
+		t.Fatal(err)
 	}
 }

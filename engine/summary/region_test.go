@@ -1,6 +1,7 @@
 package summary
 
 import (
+	"errors"
 	"math"
 	"math/rand/v2"
 	"testing"
@@ -136,10 +137,10 @@ func TestInsideSampled(t *testing.T) {
 
 func TestInsideBadPolygon(t *testing.T) {
 	s, _ := New(Options{})
-	if _, err := s.Inside([][]geo.LonLat{{{}, {}, {}}}); err != ErrNothing {
+	if _, err := s.Inside([][]geo.LonLat{{{}, {}, {}}}); !errors.Is(err, ErrNothing) {
 		t.Errorf("before the first belief: %v", err)
 	}
-	if _, err := s.Region(0.5); err != ErrNothing {
+	if _, err := s.Region(0.5); !errors.Is(err, ErrNothing) {
 		t.Errorf("before the first belief: %v", err)
 	}
 	s, _ = summarize(t, Options{}, planeInput([]gauss{{1, 0, 0, Cov{1, 0, 1}}}))

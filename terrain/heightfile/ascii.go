@@ -2,6 +2,7 @@ package heightfile
 
 import (
 	"bufio"
+	"errors"
 	"fmt"
 	"io"
 	"math"
@@ -117,7 +118,7 @@ func readASCII(r io.ReaderAt, size int64, _ string, opt Options) (*raw, error) {
 		}
 		f.values[i] = float32(v)
 	}
-	if word, err := t.next(); err != io.EOF {
+	if word, err := t.next(); !errors.Is(err, io.EOF) {
 		if err != nil {
 			return nil, t.at("%v", err)
 		}
@@ -184,7 +185,7 @@ func (t *tokens) at(format string, args ...any) error {
 func quote(s string) string { return strconv.Quote(s) }
 
 func eofText(err error) string {
-	if err == io.EOF {
+	if errors.Is(err, io.EOF) {
 		return "the file ends"
 	}
 	return err.Error()
