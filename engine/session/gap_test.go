@@ -158,7 +158,7 @@ func TestLongGaps(t *testing.T) {
 		m      sensor.Measurement // over 100 s
 	}{
 		{"roads", roads, nil},
-		{"roads spread", roads, sensor.Travel{Since: at(0), SigmaM: 2000}},
+		{"roads spread", roads, sensor.Travel{Since: at(0), SigmaM: 800}},
 		{"roads far", roads, sensor.Travel{Since: at(0), DistanceM: 3000, SigmaM: 1}},
 		{"water", open1, nil},
 		{"water spread", open1, sensor.Displacement{Since: at(0), CovM2: [3]float64{1e15, 0, 1e14}}},
