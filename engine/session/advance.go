@@ -200,8 +200,8 @@ func (s *Session) cellM() float64 {
 	return s.cellsM[s.state.belief.Level]
 }
 
-// Cells of a wide belief on lines are coarse: below refineBelow Gaussians a
-// level finer is affordable (each level doubles their number at most), above
+// Cells of a wide belief on lines are coarse: below maxCells/refineShare a
+// level finer is affordable (each level doubles the Gaussians at most), above
 // maxCells a coarser one is needed.
 const refineShare = 8
 

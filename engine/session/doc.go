@@ -8,5 +8,12 @@
 // suite's window, goes to its place, and what follows is computed again from
 // a snapshot; an older one is refused.
 //
+// Increments say since when they speak. A speed speaks for the time since the
+// same sensor's speed before, at most hold_s; a standstill for that since the
+// one before, at most a second or half of the late window. What reaches back
+// before the window is refused as a whole. What several sensors say is combined
+// for each stretch between two beginnings or ends, and a stretch that nobody
+// measures is a gap, however other measurements cut it.
+//
 // A session is pure: no clock, no I/O, no goroutine. One goroutine owns it.
 package session
