@@ -59,7 +59,7 @@ var mayImport = map[string][]string{
 	"fixtures/heights":       {},
 	"fixtures/reference":     {"engine/geo"},
 	"fixtures/drives":        {"engine/drivefile", "engine/geo", "engine/sensor", "fixtures/sim"},
-	"fixtures/accept":        {"engine/drivefile", "engine/session"},
+	"fixtures/accept":        {"engine/study/score"},
 	"fixtures/outside/fetch": {"fixtures/outside"},
 	"tools/...":              {},
 }
