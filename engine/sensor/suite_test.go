@@ -101,7 +101,7 @@ func TestParseSuiteErrors(t *testing.T) {
 		{"two documents", "---\nvehicle: {hold_s: 1}\n---\nvehicle: {hold_s: 1}\n", []string{"x.yaml:3:", "one document"}},
 		{"deep", strings.Repeat("[", 20), []string{"x.yaml:1:", "deeply"}},
 		{"long line", "# " + strings.Repeat("x", 600), []string{"x.yaml:1:", "bytes"}},
-		{"huge", strings.Repeat("# x\n", maxSuiteBytes), []string{"x.yaml:", "at most"}},
+		{"huge", strings.Repeat("# x\n", maxYAMLBytes), []string{"x.yaml:", "at most"}},
 		{"binary", "vehicle:\n\x00", []string{"x.yaml:2:", "no text"}},
 		{"not UTF-8", "vehicle: \xff\n", []string{"x.yaml:1:", "no text"}},
 		{"two faults, both said, in order of line", "sensors:\n- name: a\n  kind: nope\nvehicle:\n  hold_s: -1\n", []string{"x.yaml:3:", "nope", "x.yaml:5:", "hold_s"}},

@@ -9,19 +9,6 @@ import (
 	"leadline/engine/geo"
 )
 
-// finding is one thing wrong with a suite: where and what.
-type finding struct {
-	path, text string
-	line       int
-}
-
-func (f finding) String() string {
-	if f.path == "" {
-		return f.text
-	}
-	return f.path + ": " + f.text
-}
-
 // Validate lists everything wrong with a suite in one error.
 func (s *Suite) Validate() error {
 	found := s.problems()
@@ -35,10 +22,10 @@ func (s *Suite) Validate() error {
 	return errors.New("suite: " + strings.Join(all, "; "))
 }
 
-type findings []finding
+type findings []Finding
 
 func (f *findings) add(path, format string, args ...any) {
-	*f = append(*f, finding{path: path, text: fmt.Sprintf(format, args...)})
+	*f = append(*f, Finding{path, fmt.Sprintf(format, args...)})
 }
 
 // within reports a figure outside [lo, hi]; NaN is.
@@ -67,7 +54,7 @@ func (f *findings) id(path, id string, seen map[string]bool) {
 	seen[id] = true
 }
 
-func (s *Suite) problems() []finding {
+func (s *Suite) problems() []Finding {
 	var f findings
 	v := s.Vehicle
 	f.unless0("vehicle.alert_limit_m", v.AlertLimitM, 0.01, 1e6)
