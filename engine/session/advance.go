@@ -170,6 +170,7 @@ func (s *Session) weigh(ev sensor.Event, l any) {
 		st.logEvidence += e
 	}
 	st.record(summary.Evidence{Sensor: ev.Sensor, Number: ev.Number, Kind: ev.Measurement.Kind(), LogEvidence: e})
+	s.watched(Change{Time: ev.Time, Event: ev, Likelihood: l, LogEvidence: e})
 }
 
 // context is what a likelihood of ev needs to know.

@@ -113,6 +113,7 @@ func (s *Session) predict() {
 		panic(fmt.Sprintf("session: %v", err)) // Supports refuses what a step cannot take
 	}
 	s.spread(step)
+	s.watched(Change{From: m.From, Time: m.To})
 	travelledM := m.TravelledM()
 	st.odometerM += travelledM
 	if gap := m.GapS(); gap > 0 {
@@ -129,7 +130,7 @@ func (s *Session) predict() {
 		st.speed = summary.Speed{Known: true, MPS: travelledM / dt, SigmaMPS: math.Sqrt(step.Q[0]) / dt}
 	}
 	if l := s.followsRoad(travelledM); l != nil {
-		s.weigh(sensor.Event{Sensor: roadSensor, Measurement: sensor.Turn{}}, l)
+		s.weigh(sensor.Event{Time: m.To, Sensor: roadSensor, Measurement: sensor.Turn{}}, l)
 	}
 }
 

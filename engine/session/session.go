@@ -144,6 +144,7 @@ type Session struct {
 	flushed   bool
 	flushedAt sensor.Time
 	pressed   bool // do not wait: see relieve
+	watch     func(Change)
 }
 
 // New starts a session. An error says what is wrong with the configuration.

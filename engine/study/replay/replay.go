@@ -74,6 +74,8 @@ type Options struct {
 	// Progress, if set, is called now and then, and at the end with done =
 	// total, the number of measurements.
 	Progress func(done, total int)
+	// Watch, if set, watches the session.
+	Watch func(session.Change)
 }
 
 // Run makes a session of c, with the drive's vehicle and start, and runs the
@@ -93,6 +95,9 @@ func Run(d *drivefile.Drive, c session.Config, o Options) (*Result, error) {
 	s, err := session.New(c)
 	if err != nil {
 		return nil, err
+	}
+	if o.Watch != nil {
+		s.Watch(o.Watch)
 	}
 	r := &Result{}
 	events := Ordered(d.Events)

@@ -1,0 +1,31 @@
+package session
+
+import "leadline/engine/sensor"
+
+// Change is one thing that happened to the belief: it moved, or it was
+// weighed.
+type Change struct {
+	// From and Time are the stretch of time of a move; a weighing has its Time
+	// alone.
+	From, Time sensor.Time
+	// Event is what weighed the belief and Likelihood what it said, one of
+	// sensor.Likelihoods or, for the sensor "road", the comparison with the
+	// road. A move has neither.
+	Event      sensor.Event
+	Likelihood any
+	// LogEvidence is -Inf where the event is impossible everywhere in the
+	// belief, which it then left alone.
+	LogEvidence float64
+}
+
+// Watch has f called after each move and each weighing of the belief, as they
+// happen: for studies. f may read the belief (ReadBelief, Size) and must do
+// nothing else with the session. What a late event has computed again is seen
+// again.
+func (s *Session) Watch(f func(Change)) { s.watch = f }
+
+func (s *Session) watched(c Change) {
+	if s.watch != nil {
+		s.watch(c)
+	}
+}

@@ -1,0 +1,47 @@
+package session
+
+import (
+	"testing"
+
+	"leadline/engine/sensor"
+)
+
+// TestWatch proves that a session that is watched computes what another one
+// does, that the moves cover its time without a hole, and that the weighings,
+// the road's included, are all of the evidence.
+func TestWatch(t *testing.T) {
+	c := newCar(winding(1), 7, func(s float64) float64 { return 30 + 8*s })
+	c.odometer("odo", 0, 0.1, 20)
+	c.gyro("gyro", 0, 0.13, 20)
+	c.fixes("fix", 0.5, 1, 20, 6)
+	config := Config{Space: c.road, Names: c.road, Start: pointStart(c.road, c.road.charted(30), 10)}
+	alone := feed(t, open(t, config), inOrder(c.list))
+
+	s := open(t, config)
+	sum, roads, fixes := 0.0, 0, 0
+	var now sensor.Time
+	s.Watch(func(w Change) {
+		switch {
+		case w.Likelihood == nil:
+			if now != 0 && w.From != now || w.Time <= w.From {
+				t.Fatalf("a move from %d to %d comes after one to %d", w.From, w.Time, now)
+			}
+			now = w.Time
+		case w.Event.Sensor == roadSensor:
+			roads++
+		default:
+			fixes++
+		}
+		if w.Time != now && now != 0 {
+			t.Fatalf("a change at %d of a belief at %d", w.Time, now)
+		}
+		sum += w.LogEvidence
+	})
+	watched := feed(t, s, inOrder(c.list))
+	if watched.hash != alone.hash {
+		t.Error("watching changed the posteriors")
+	}
+	if got := s.Latest().LogEvidence; sum != got || fixes != 19 || roads == 0 {
+		t.Errorf("%d fixes and %d comparisons with the road were seen, with evidence %v; the session has %v", fixes, roads, sum, got)
+	}
+}
