@@ -254,11 +254,11 @@ func (o *demoOptions) serve(c *cobra.Command, m *mapFile, drivePath, hash string
 	defer conn.Close()
 	ctx, cancel := context.WithTimeout(context.Background(), 10*time.Second)
 	defer cancel()
-	answer, err := leadlinev1.NewPositionServiceClient(conn).Where(ctx, &leadlinev1.WhereRequest{Vehicle: demoVan})
+	answer, err := leadlinev1.NewPositionServiceClient(conn).Where(ctx, &leadlinev1.WhereRequest{Vehicles: []string{demoVan}})
 	if err != nil {
 		return serverError(err, address)
 	}
-	printPosterior(w, answer.GetPosterior())
+	printPosterior(w, answer.GetAnswers()[0].GetPosterior())
 	if got := closed.GetPosteriorSha256(); got != hash {
 		return failure{fmt.Errorf("the server's posteriors have the hash %s, the replay's %s: they must be equal; report this with the drive file", got, hash)}
 	}

@@ -111,6 +111,6 @@ func words(name, prefix string) string {
 }
 
 // reasonText is a refusal's reason in the session's words.
-func reasonText(r leadlinev1.RefusalReason) session.Reason {
+func reasonText(r leadlinev1.Reason) session.Reason {
 	return session.Reason(words(r.String(), "REFUSAL_REASON_"))
 }

@@ -40,7 +40,7 @@ func whereCommand() *cobra.Command {
 }
 
 func where(c *cobra.Command, o *whereOptions, vehicle string) error {
-	req := &leadlinev1.WhereRequest{Vehicle: vehicle}
+	req := &leadlinev1.WhereRequest{Vehicles: []string{vehicle}}
 	for _, percent := range o.regions {
 		if !(percent > 0 && percent < 100) {
 			return fmt.Errorf("--region is %v: give a percentage above 0 and below 100", percent)
@@ -66,10 +66,11 @@ func where(c *cobra.Command, o *whereOptions, vehicle string) error {
 	defer conn.Close()
 	ctx, cancel := context.WithTimeout(context.Background(), o.timeout)
 	defer cancel()
-	answer, err := leadlinev1.NewPositionServiceClient(conn).Where(ctx, req)
+	resp, err := leadlinev1.NewPositionServiceClient(conn).Where(ctx, req)
 	if err != nil {
 		return serverError(err, o.at)
 	}
+	answer := resp.GetAnswers()[0]
 	w := c.OutOrStdout()
 	if o.asJSON {
 		return printMessage(w, answer)

@@ -21,14 +21,13 @@ var (
 )
 
 // reasons are the API's words for a session's.
-var reasons = map[session.Reason]leadlinev1.RefusalReason{
-	session.Unusable:    leadlinev1.RefusalReason_REFUSAL_REASON_UNUSABLE,
-	session.WrongSpace:  leadlinev1.RefusalReason_REFUSAL_REASON_WRONG_SPACE,
-	session.TooLate:     leadlinev1.RefusalReason_REFUSAL_REASON_TOO_LATE,
-	session.TooEarly:    leadlinev1.RefusalReason_REFUSAL_REASON_TOO_EARLY,
-	session.Conflicting: leadlinev1.RefusalReason_REFUSAL_REASON_CONFLICTING,
-	session.Impossible:  leadlinev1.RefusalReason_REFUSAL_REASON_IMPOSSIBLE,
-	session.Overfull:    leadlinev1.RefusalReason_REFUSAL_REASON_TOO_MUCH,
+var reasons = map[session.Reason]leadlinev1.Reason{
+	session.Unusable:    leadlinev1.Reason_REASON_UNUSABLE,
+	session.WrongSpace:  leadlinev1.Reason_REASON_WRONG_SPACE,
+	session.TooLate:     leadlinev1.Reason_REASON_TOO_LATE,
+	session.TooEarly:    leadlinev1.Reason_REASON_TOO_EARLY,
+	session.Conflicting: leadlinev1.Reason_REASON_CONFLICTING,
+	session.Overfull:    leadlinev1.Reason_REASON_TOO_MUCH,
 }
 
 // refusal says why a measurement was not used; ok is false if the error is not

@@ -40,25 +40,25 @@ func TestRefusals(t *testing.T) {
 	long.Sensor = strings.Repeat("é", 4000)
 	bad := []struct {
 		m      *leadlinev1.SensorMeasurement
-		reason leadlinev1.RefusalReason
+		reason leadlinev1.Reason
 		words  string
 	}{
-		{&leadlinev1.SensorMeasurement{}, leadlinev1.RefusalReason_REFUSAL_REASON_UNUSABLE, "time: missing"},
-		{z(nil), leadlinev1.RefusalReason_REFUSAL_REASON_UNUSABLE, "no kind"},
-		{fix(math.NaN(), 53, 1), leadlinev1.RefusalReason_REFUSAL_REASON_UNUSABLE, "not on the globe"},
-		{fix(5, 53, -1), leadlinev1.RefusalReason_REFUSAL_REASON_UNUSABLE, "sigma_m is -1"},
-		{heading(math.Inf(1), 1), leadlinev1.RefusalReason_REFUSAL_REASON_UNUSABLE, "deg is +Inf"},
-		{heading(5, math.NaN()), leadlinev1.RefusalReason_REFUSAL_REASON_UNUSABLE, "sigma_deg is NaN"},
+		{&leadlinev1.SensorMeasurement{}, leadlinev1.Reason_REASON_UNUSABLE, "time: missing"},
+		{z(nil), leadlinev1.Reason_REASON_UNUSABLE, "no kind"},
+		{fix(math.NaN(), 53, 1), leadlinev1.Reason_REASON_UNUSABLE, "not on the globe"},
+		{fix(5, 53, -1), leadlinev1.Reason_REASON_UNUSABLE, "sigma_m is -1"},
+		{heading(math.Inf(1), 1), leadlinev1.Reason_REASON_UNUSABLE, "deg is +Inf"},
+		{heading(5, math.NaN()), leadlinev1.Reason_REASON_UNUSABLE, "sigma_deg is NaN"},
 		{z(&leadlinev1.Measurement{Kind: &leadlinev1.Measurement_Range{Range: &leadlinev1.Range{
 			Beacon: &leadlinev1.Beacon{Place: &leadlinev1.Beacon_Id{Id: "nobody"}}, RangeM: 5, SigmaM: 1,
-		}}}), leadlinev1.RefusalReason_REFUSAL_REASON_UNUSABLE, "nobody"},
+		}}}), leadlinev1.Reason_REASON_UNUSABLE, "nobody"},
 		{z(&leadlinev1.Measurement{Kind: &leadlinev1.Measurement_Sighting{Sighting: &leadlinev1.Sighting{
 			Place: &leadlinev1.Sighting_Road{Road: "High Street"}, Mistaken: 0.1,
-		}}}), leadlinev1.RefusalReason_REFUSAL_REASON_WRONG_SPACE, "road"},
-		{late, leadlinev1.RefusalReason_REFUSAL_REASON_TOO_LATE, "late_window_s"},
-		{early, leadlinev1.RefusalReason_REFUSAL_REASON_TOO_EARLY, "clock"},
-		{other, leadlinev1.RefusalReason_REFUSAL_REASON_CONFLICTING, "number"},
-		{long, leadlinev1.RefusalReason_REFUSAL_REASON_UNUSABLE, "sensor is 8000 bytes long"},
+		}}}), leadlinev1.Reason_REASON_WRONG_SPACE, "road"},
+		{late, leadlinev1.Reason_REASON_TOO_LATE, "late_window_s"},
+		{early, leadlinev1.Reason_REASON_TOO_EARLY, "clock"},
+		{other, leadlinev1.Reason_REASON_CONFLICTING, "number"},
+		{long, leadlinev1.Reason_REASON_UNUSABLE, "sensor is 8000 bytes long"},
 	}
 	first := batch(1, good...)
 	second := &leadlinev1.Batch{Sequence: 2}
@@ -93,9 +93,9 @@ func TestRefusals(t *testing.T) {
 func TestEveryReasonHasAWord(t *testing.T) {
 	for _, r := range []session.Reason{
 		session.Unusable, session.TooLate, session.TooEarly, session.Conflicting,
-		session.WrongSpace, session.Impossible, session.Overfull,
+		session.WrongSpace, session.Overfull,
 	} {
-		if reasons[r] == leadlinev1.RefusalReason_REFUSAL_REASON_UNSPECIFIED {
+		if reasons[r] == leadlinev1.Reason_REASON_UNSPECIFIED {
 			t.Errorf("no word for %q", r)
 		}
 	}

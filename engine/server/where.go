@@ -21,17 +21,33 @@ type question struct {
 }
 
 type reply struct {
-	message *leadlinev1.WhereResponse
+	message *leadlinev1.WhereAnswer
 	err     error
 }
 
 // Where answers from the measurements so far: see the .proto file.
 func (s *Server) Where(ctx context.Context, req *leadlinev1.WhereRequest) (*leadlinev1.WhereResponse, error) {
-	q, err := s.question(req)
-	if err != nil {
-		return nil, err
+	resp := &leadlinev1.WhereResponse{}
+	for _, vehicle := range req.GetVehicles() {
+		q, err := s.question(req)
+		if err != nil {
+			return nil, err
+		}
+		a, err := s.ask(ctx, vehicle, q)
+		if err != nil {
+			return nil, err
+		}
+		resp.Answers = append(resp.Answers, a)
 	}
-	o, err := s.find(req.GetVehicle())
+	if len(resp.GetAnswers()) == 0 {
+		return nil, status.Error(codes.InvalidArgument, "where: vehicles is empty: give the names they are fed under")
+	}
+	return resp, nil
+}
+
+// ask puts a question to a vehicle's owner.
+func (s *Server) ask(ctx context.Context, vehicle string, q *question) (*leadlinev1.WhereAnswer, error) {
+	o, err := s.find(vehicle)
 	if err != nil {
 		return nil, err
 	}
@@ -55,9 +71,6 @@ func (s *Server) Where(ctx context.Context, req *leadlinev1.WhereRequest) (*lead
 // question checks a request.
 func (s *Server) question(req *leadlinev1.WhereRequest) (*question, error) {
 	q := &question{fractions: req.GetRegionFractions(), answer: make(chan reply, 1)}
-	if req.GetVehicle() == "" {
-		return nil, status.Error(codes.InvalidArgument, "where: vehicle is missing: give the name it is fed under")
-	}
 	if n, most := len(q.fractions), s.cfg.Limits.Regions; n > most {
 		return nil, status.Errorf(codes.InvalidArgument, "where: %d region_fractions: at most %d", n, most)
 	}
@@ -90,7 +103,7 @@ func (o *owner) answer(q *question) reply {
 	if err := o.more(m, q); err != nil {
 		return reply{err: err}
 	}
-	return reply{message: &leadlinev1.WhereResponse{Posterior: m, PosteriorSha256: o.sess.Hash(), Ended: o.ended}}
+	return reply{message: &leadlinev1.WhereAnswer{Vehicle: o.vehicle, Drive: o.drive, Posterior: m, PosteriorSha256: o.sess.Hash(), Ended: o.ended}}
 }
 
 // more adds what a question asks beyond the posterior.

@@ -20,7 +20,6 @@ const (
 	TooEarly    Reason = "too early"   // so far ahead that a clock must be wrong
 	Conflicting Reason = "conflicting" // another measurement has its time, sensor and number, or covers its time
 	WrongSpace  Reason = "wrong space" // a kind that this map cannot use
-	Impossible  Reason = "impossible"  // reserved: what is impossible everywhere in the belief is accepted, with evidence -Inf
 	Overfull    Reason = "too much"    // more than a bound allows
 )
 

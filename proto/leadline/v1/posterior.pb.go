@@ -155,9 +155,15 @@ type Posterior struct {
 	// When the server answered, by its own clock, UTC.
 	AsOf *timestamppb.Timestamp `protobuf:"bytes,25,opt,name=as_of,json=asOf,proto3" json:"as_of,omitempty"`
 	// as_of minus time, s.
-	AgeS          float64 `protobuf:"fixed64,26,opt,name=age_s,json=ageS,proto3" json:"age_s,omitempty"`
-	unknownFields protoimpl.UnknownFields
-	sizeCache     protoimpl.SizeCache
+	AgeS float64 `protobuf:"fixed64,26,opt,name=age_s,json=ageS,proto3" json:"age_s,omitempty"`
+	// How long before time the last measurement was, s, where it was asked to
+	// carry the belief on to the present by the motion prior; 0 otherwise.
+	PredictedS float64 `protobuf:"fixed64,31,opt,name=predicted_s,json=predictedS,proto3" json:"predicted_s,omitempty"`
+	// The fingerprint of a newer map of the same name; empty if there is none.
+	// The drive keeps the one it was opened with.
+	NewerMapFingerprint string `protobuf:"bytes,32,opt,name=newer_map_fingerprint,json=newerMapFingerprint,proto3" json:"newer_map_fingerprint,omitempty"`
+	unknownFields       protoimpl.UnknownFields
+	sizeCache           protoimpl.SizeCache
 }
 
 func (x *Posterior) Reset() {
@@ -398,6 +404,20 @@ func (x *Posterior) GetAgeS() float64 {
 		return x.AgeS
 	}
 	return 0
+}
+
+func (x *Posterior) GetPredictedS() float64 {
+	if x != nil {
+		return x.PredictedS
+	}
+	return 0
+}
+
+func (x *Posterior) GetNewerMapFingerprint() string {
+	if x != nil {
+		return x.NewerMapFingerprint
+	}
+	return ""
 }
 
 // Place is the cell of the greatest density.
@@ -1173,11 +1193,59 @@ func (x *Counts) GetRestart() float64 {
 	return 0
 }
 
+// Withdrawn says that posteriors which were sent hold no more and that none
+// comes in their place: a late measurement changed the belief so that it passes
+// those times over.
+type Withdrawn struct {
+	state         protoimpl.MessageState   `protogen:"open.v1"`
+	Times         []*timestamppb.Timestamp `protobuf:"bytes,1,rep,name=times,proto3" json:"times,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Withdrawn) Reset() {
+	*x = Withdrawn{}
+	mi := &file_leadline_v1_posterior_proto_msgTypes[12]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Withdrawn) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Withdrawn) ProtoMessage() {}
+
+func (x *Withdrawn) ProtoReflect() protoreflect.Message {
+	mi := &file_leadline_v1_posterior_proto_msgTypes[12]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Withdrawn.ProtoReflect.Descriptor instead.
+func (*Withdrawn) Descriptor() ([]byte, []int) {
+	return file_leadline_v1_posterior_proto_rawDescGZIP(), []int{12}
+}
+
+func (x *Withdrawn) GetTimes() []*timestamppb.Timestamp {
+	if x != nil {
+		return x.Times
+	}
+	return nil
+}
+
 var File_leadline_v1_posterior_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\n" +
-	"\x1bleadline/v1/posterior.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/place.proto\"\xd4\t\n" +
+	"\x1bleadline/v1/posterior.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/place.proto\"\xa9\n" +
+	"\n" +
 	"\tPosterior\x12.\n" +
 	"\x04time\x18\x01 \x01(\v2\x1a.google.protobuf.TimestampR\x04time\x12\x18\n" +
 	"\avehicle\x18\x02 \x01(\tR\avehicle\x12\x10\n" +
@@ -1215,7 +1283,10 @@ const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\adurable\x18\x17 \x01(\bR\adurable\x12\x18\n" +
 	"\arevises\x18\x18 \x01(\bR\arevises\x12/\n" +
 	"\x05as_of\x18\x19 \x01(\v2\x1a.google.protobuf.TimestampR\x04asOf\x12\x13\n" +
-	"\x05age_s\x18\x1a \x01(\x01R\x04ageSB\x13\n" +
+	"\x05age_s\x18\x1a \x01(\x01R\x04ageS\x12\x1f\n" +
+	"\vpredicted_s\x18\x1f \x01(\x01R\n" +
+	"predictedS\x122\n" +
+	"\x15newer_map_fingerprint\x18  \x01(\tR\x13newerMapFingerprintB\x13\n" +
 	"\x11_area_probability\"\xab\x01\n" +
 	"\x05Place\x121\n" +
 	"\bposition\x18\x01 \x01(\v2\x15.leadline.v1.PositionR\bposition\x12 \n" +
@@ -1276,7 +1347,9 @@ const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\arefused\x18\x02 \x01(\x04R\arefused\x12\x16\n" +
 	"\x06pruned\x18\x03 \x01(\x01R\x06pruned\x12\x19\n" +
 	"\bleft_map\x18\x04 \x01(\x01R\aleftMap\x12\x18\n" +
-	"\arestart\x18\x05 \x01(\x01R\arestart*\x8a\x01\n" +
+	"\arestart\x18\x05 \x01(\x01R\arestart\"=\n" +
+	"\tWithdrawn\x120\n" +
+	"\x05times\x18\x01 \x03(\v2\x1a.google.protobuf.TimestampR\x05times*\x8a\x01\n" +
 	"\x06Status\x12\x16\n" +
 	"\x12STATUS_UNSPECIFIED\x10\x00\x12\x17\n" +
 	"\x13STATUS_CONTRADICTED\x10\x01\x12\x12\n" +
@@ -1298,7 +1371,7 @@ func file_leadline_v1_posterior_proto_rawDescGZIP() []byte {
 }
 
 var file_leadline_v1_posterior_proto_enumTypes = make([]protoimpl.EnumInfo, 1)
-var file_leadline_v1_posterior_proto_msgTypes = make([]protoimpl.MessageInfo, 12)
+var file_leadline_v1_posterior_proto_msgTypes = make([]protoimpl.MessageInfo, 13)
 var file_leadline_v1_posterior_proto_goTypes = []any{
 	(Status)(0),                   // 0: leadline.v1.Status
 	(*Posterior)(nil),             // 1: leadline.v1.Posterior
@@ -1313,16 +1386,17 @@ var file_leadline_v1_posterior_proto_goTypes = []any{
 	(*Nuisance)(nil),              // 10: leadline.v1.Nuisance
 	(*Evidence)(nil),              // 11: leadline.v1.Evidence
 	(*Counts)(nil),                // 12: leadline.v1.Counts
-	(*timestamppb.Timestamp)(nil), // 13: google.protobuf.Timestamp
-	(*Position)(nil),              // 14: leadline.v1.Position
-	(*Covariance)(nil),            // 15: leadline.v1.Covariance
-	(*Polygon)(nil),               // 16: leadline.v1.Polygon
+	(*Withdrawn)(nil),             // 13: leadline.v1.Withdrawn
+	(*timestamppb.Timestamp)(nil), // 14: google.protobuf.Timestamp
+	(*Position)(nil),              // 15: leadline.v1.Position
+	(*Covariance)(nil),            // 16: leadline.v1.Covariance
+	(*Polygon)(nil),               // 17: leadline.v1.Polygon
 }
 var file_leadline_v1_posterior_proto_depIdxs = []int32{
-	13, // 0: leadline.v1.Posterior.time:type_name -> google.protobuf.Timestamp
+	14, // 0: leadline.v1.Posterior.time:type_name -> google.protobuf.Timestamp
 	0,  // 1: leadline.v1.Posterior.status:type_name -> leadline.v1.Status
-	14, // 2: leadline.v1.Posterior.mean:type_name -> leadline.v1.Position
-	15, // 3: leadline.v1.Posterior.covariance:type_name -> leadline.v1.Covariance
+	15, // 2: leadline.v1.Posterior.mean:type_name -> leadline.v1.Position
+	16, // 3: leadline.v1.Posterior.covariance:type_name -> leadline.v1.Covariance
 	2,  // 4: leadline.v1.Posterior.most_probable:type_name -> leadline.v1.Place
 	3,  // 5: leadline.v1.Posterior.modes:type_name -> leadline.v1.Mode
 	4,  // 6: leadline.v1.Posterior.heading:type_name -> leadline.v1.Direction
@@ -1334,17 +1408,18 @@ var file_leadline_v1_posterior_proto_depIdxs = []int32{
 	10, // 12: leadline.v1.Posterior.nuisances:type_name -> leadline.v1.Nuisance
 	11, // 13: leadline.v1.Posterior.evidence:type_name -> leadline.v1.Evidence
 	12, // 14: leadline.v1.Posterior.counts:type_name -> leadline.v1.Counts
-	13, // 15: leadline.v1.Posterior.as_of:type_name -> google.protobuf.Timestamp
-	14, // 16: leadline.v1.Place.position:type_name -> leadline.v1.Position
-	14, // 17: leadline.v1.Mode.mean:type_name -> leadline.v1.Position
-	15, // 18: leadline.v1.Mode.covariance:type_name -> leadline.v1.Covariance
+	14, // 15: leadline.v1.Posterior.as_of:type_name -> google.protobuf.Timestamp
+	15, // 16: leadline.v1.Place.position:type_name -> leadline.v1.Position
+	15, // 17: leadline.v1.Mode.mean:type_name -> leadline.v1.Position
+	16, // 18: leadline.v1.Mode.covariance:type_name -> leadline.v1.Covariance
 	6,  // 19: leadline.v1.Mode.edges:type_name -> leadline.v1.EdgeProbability
-	16, // 20: leadline.v1.Region.polygons:type_name -> leadline.v1.Polygon
-	21, // [21:21] is the sub-list for method output_type
-	21, // [21:21] is the sub-list for method input_type
-	21, // [21:21] is the sub-list for extension type_name
-	21, // [21:21] is the sub-list for extension extendee
-	0,  // [0:21] is the sub-list for field type_name
+	17, // 20: leadline.v1.Region.polygons:type_name -> leadline.v1.Polygon
+	14, // 21: leadline.v1.Withdrawn.times:type_name -> google.protobuf.Timestamp
+	22, // [22:22] is the sub-list for method output_type
+	22, // [22:22] is the sub-list for method input_type
+	22, // [22:22] is the sub-list for extension type_name
+	22, // [22:22] is the sub-list for extension extendee
+	0,  // [0:22] is the sub-list for field type_name
 }
 
 func init() { file_leadline_v1_posterior_proto_init() }
@@ -1363,7 +1438,7 @@ func file_leadline_v1_posterior_proto_init() {
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_leadline_v1_posterior_proto_rawDesc), len(file_leadline_v1_posterior_proto_rawDesc)),
 			NumEnums:      1,
-			NumMessages:   12,
+			NumMessages:   13,
 			NumExtensions: 0,
 			NumServices:   0,
 		},

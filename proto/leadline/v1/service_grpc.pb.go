@@ -19,8 +19,16 @@ import (
 const _ = grpc.SupportPackageIsVersion9
 
 const (
-	PositionService_Feed_FullMethodName  = "/leadline.v1.PositionService/Feed"
-	PositionService_Where_FullMethodName = "/leadline.v1.PositionService/Where"
+	PositionService_Feed_FullMethodName          = "/leadline.v1.PositionService/Feed"
+	PositionService_Where_FullMethodName         = "/leadline.v1.PositionService/Where"
+	PositionService_Follow_FullMethodName        = "/leadline.v1.PositionService/Follow"
+	PositionService_ListVehicles_FullMethodName  = "/leadline.v1.PositionService/ListVehicles"
+	PositionService_EndDrive_FullMethodName      = "/leadline.v1.PositionService/EndDrive"
+	PositionService_ListMaps_FullMethodName      = "/leadline.v1.PositionService/ListMaps"
+	PositionService_DescribeMap_FullMethodName   = "/leadline.v1.PositionService/DescribeMap"
+	PositionService_ListSuites_FullMethodName    = "/leadline.v1.PositionService/ListSuites"
+	PositionService_DescribeSuite_FullMethodName = "/leadline.v1.PositionService/DescribeSuite"
+	PositionService_UploadMap_FullMethodName     = "/leadline.v1.PositionService/UploadMap"
 )
 
 // PositionServiceClient is the client API for PositionService service.
@@ -29,21 +37,36 @@ const (
 //
 // PositionService takes vehicles' measurements and says where they are.
 //
-// A call that fails has a google.rpc status: INVALID_ARGUMENT for a message
-// that no server would take, NOT_FOUND for an unknown map, suite or vehicle,
-// FAILED_PRECONDITION for one that does not fit what was sent before,
-// ALREADY_EXISTS for a vehicle whose other drive is not finished,
-// RESOURCE_EXHAUSTED for a limit, ABORTED where another stream took over,
-// UNAVAILABLE while the server stops. Its message says what was wrong, where,
-// and what to do.
+// An aid, not a certified means of navigation: a position may be wrong although
+// it is called located.
+//
+// A call that fails says why in a google.rpc.ErrorInfo: see Reason. Every
+// answer's header holds leadline-version, the server's version.
 type PositionServiceClient interface {
 	// Feed carries one drive of one vehicle. The client sends open, batches,
 	// end; the server answers opened, a receipt for each batch with the
 	// posteriors that it released, and closed. When a stream breaks, opening the
 	// same drive again continues it: opened says which batches are already in.
 	Feed(ctx context.Context, opts ...grpc.CallOption) (grpc.BidiStreamingClient[FeedRequest, FeedResponse], error)
-	// Where says where a vehicle is, from the measurements so far.
+	// Where says where vehicles are, from the measurements so far.
 	Where(ctx context.Context, in *WhereRequest, opts ...grpc.CallOption) (*WhereResponse, error)
+	// Follow tells of vehicles as they move on, until the client has enough. A
+	// client that reads slowly is told the latest, and how much it missed.
+	Follow(ctx context.Context, in *FollowRequest, opts ...grpc.CallOption) (grpc.ServerStreamingClient[FollowResponse], error)
+	// ListVehicles says who is here.
+	ListVehicles(ctx context.Context, in *ListVehiclesRequest, opts ...grpc.CallOption) (*ListVehiclesResponse, error)
+	// EndDrive ends a drive that its vehicle will not end.
+	EndDrive(ctx context.Context, in *EndDriveRequest, opts ...grpc.CallOption) (*EndDriveResponse, error)
+	// ListMaps says which maps drives may use.
+	ListMaps(ctx context.Context, in *ListMapsRequest, opts ...grpc.CallOption) (*ListMapsResponse, error)
+	// DescribeMap says what one of them is.
+	DescribeMap(ctx context.Context, in *DescribeMapRequest, opts ...grpc.CallOption) (*DescribeMapResponse, error)
+	// ListSuites says which suites drives may use.
+	ListSuites(ctx context.Context, in *ListSuitesRequest, opts ...grpc.CallOption) (*ListSuitesResponse, error)
+	// DescribeSuite says what one of them is.
+	DescribeSuite(ctx context.Context, in *DescribeSuiteRequest, opts ...grpc.CallOption) (*DescribeSuiteResponse, error)
+	// UploadMap adds a map, where the server allows it.
+	UploadMap(ctx context.Context, opts ...grpc.CallOption) (grpc.ClientStreamingClient[UploadMapRequest, UploadMapResponse], error)
 }
 
 type positionServiceClient struct {
@@ -77,27 +100,134 @@ func (c *positionServiceClient) Where(ctx context.Context, in *WhereRequest, opt
 	return out, nil
 }
 
+func (c *positionServiceClient) Follow(ctx context.Context, in *FollowRequest, opts ...grpc.CallOption) (grpc.ServerStreamingClient[FollowResponse], error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	stream, err := c.cc.NewStream(ctx, &PositionService_ServiceDesc.Streams[1], PositionService_Follow_FullMethodName, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	x := &grpc.GenericClientStream[FollowRequest, FollowResponse]{ClientStream: stream}
+	if err := x.ClientStream.SendMsg(in); err != nil {
+		return nil, err
+	}
+	if err := x.ClientStream.CloseSend(); err != nil {
+		return nil, err
+	}
+	return x, nil
+}
+
+// This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
+type PositionService_FollowClient = grpc.ServerStreamingClient[FollowResponse]
+
+func (c *positionServiceClient) ListVehicles(ctx context.Context, in *ListVehiclesRequest, opts ...grpc.CallOption) (*ListVehiclesResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(ListVehiclesResponse)
+	err := c.cc.Invoke(ctx, PositionService_ListVehicles_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *positionServiceClient) EndDrive(ctx context.Context, in *EndDriveRequest, opts ...grpc.CallOption) (*EndDriveResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(EndDriveResponse)
+	err := c.cc.Invoke(ctx, PositionService_EndDrive_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *positionServiceClient) ListMaps(ctx context.Context, in *ListMapsRequest, opts ...grpc.CallOption) (*ListMapsResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(ListMapsResponse)
+	err := c.cc.Invoke(ctx, PositionService_ListMaps_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *positionServiceClient) DescribeMap(ctx context.Context, in *DescribeMapRequest, opts ...grpc.CallOption) (*DescribeMapResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(DescribeMapResponse)
+	err := c.cc.Invoke(ctx, PositionService_DescribeMap_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *positionServiceClient) ListSuites(ctx context.Context, in *ListSuitesRequest, opts ...grpc.CallOption) (*ListSuitesResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(ListSuitesResponse)
+	err := c.cc.Invoke(ctx, PositionService_ListSuites_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *positionServiceClient) DescribeSuite(ctx context.Context, in *DescribeSuiteRequest, opts ...grpc.CallOption) (*DescribeSuiteResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(DescribeSuiteResponse)
+	err := c.cc.Invoke(ctx, PositionService_DescribeSuite_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *positionServiceClient) UploadMap(ctx context.Context, opts ...grpc.CallOption) (grpc.ClientStreamingClient[UploadMapRequest, UploadMapResponse], error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	stream, err := c.cc.NewStream(ctx, &PositionService_ServiceDesc.Streams[2], PositionService_UploadMap_FullMethodName, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	x := &grpc.GenericClientStream[UploadMapRequest, UploadMapResponse]{ClientStream: stream}
+	return x, nil
+}
+
+// This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
+type PositionService_UploadMapClient = grpc.ClientStreamingClient[UploadMapRequest, UploadMapResponse]
+
 // PositionServiceServer is the server API for PositionService service.
 // All implementations must embed UnimplementedPositionServiceServer
 // for forward compatibility.
 //
 // PositionService takes vehicles' measurements and says where they are.
 //
-// A call that fails has a google.rpc status: INVALID_ARGUMENT for a message
-// that no server would take, NOT_FOUND for an unknown map, suite or vehicle,
-// FAILED_PRECONDITION for one that does not fit what was sent before,
-// ALREADY_EXISTS for a vehicle whose other drive is not finished,
-// RESOURCE_EXHAUSTED for a limit, ABORTED where another stream took over,
-// UNAVAILABLE while the server stops. Its message says what was wrong, where,
-// and what to do.
+// An aid, not a certified means of navigation: a position may be wrong although
+// it is called located.
+//
+// A call that fails says why in a google.rpc.ErrorInfo: see Reason. Every
+// answer's header holds leadline-version, the server's version.
 type PositionServiceServer interface {
 	// Feed carries one drive of one vehicle. The client sends open, batches,
 	// end; the server answers opened, a receipt for each batch with the
 	// posteriors that it released, and closed. When a stream breaks, opening the
 	// same drive again continues it: opened says which batches are already in.
 	Feed(grpc.BidiStreamingServer[FeedRequest, FeedResponse]) error
-	// Where says where a vehicle is, from the measurements so far.
+	// Where says where vehicles are, from the measurements so far.
 	Where(context.Context, *WhereRequest) (*WhereResponse, error)
+	// Follow tells of vehicles as they move on, until the client has enough. A
+	// client that reads slowly is told the latest, and how much it missed.
+	Follow(*FollowRequest, grpc.ServerStreamingServer[FollowResponse]) error
+	// ListVehicles says who is here.
+	ListVehicles(context.Context, *ListVehiclesRequest) (*ListVehiclesResponse, error)
+	// EndDrive ends a drive that its vehicle will not end.
+	EndDrive(context.Context, *EndDriveRequest) (*EndDriveResponse, error)
+	// ListMaps says which maps drives may use.
+	ListMaps(context.Context, *ListMapsRequest) (*ListMapsResponse, error)
+	// DescribeMap says what one of them is.
+	DescribeMap(context.Context, *DescribeMapRequest) (*DescribeMapResponse, error)
+	// ListSuites says which suites drives may use.
+	ListSuites(context.Context, *ListSuitesRequest) (*ListSuitesResponse, error)
+	// DescribeSuite says what one of them is.
+	DescribeSuite(context.Context, *DescribeSuiteRequest) (*DescribeSuiteResponse, error)
+	// UploadMap adds a map, where the server allows it.
+	UploadMap(grpc.ClientStreamingServer[UploadMapRequest, UploadMapResponse]) error
 	mustEmbedUnimplementedPositionServiceServer()
 }
 
@@ -113,6 +243,30 @@ func (UnimplementedPositionServiceServer) Feed(grpc.BidiStreamingServer[FeedRequ
 }
 func (UnimplementedPositionServiceServer) Where(context.Context, *WhereRequest) (*WhereResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method Where not implemented")
+}
+func (UnimplementedPositionServiceServer) Follow(*FollowRequest, grpc.ServerStreamingServer[FollowResponse]) error {
+	return status.Error(codes.Unimplemented, "method Follow not implemented")
+}
+func (UnimplementedPositionServiceServer) ListVehicles(context.Context, *ListVehiclesRequest) (*ListVehiclesResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method ListVehicles not implemented")
+}
+func (UnimplementedPositionServiceServer) EndDrive(context.Context, *EndDriveRequest) (*EndDriveResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method EndDrive not implemented")
+}
+func (UnimplementedPositionServiceServer) ListMaps(context.Context, *ListMapsRequest) (*ListMapsResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method ListMaps not implemented")
+}
+func (UnimplementedPositionServiceServer) DescribeMap(context.Context, *DescribeMapRequest) (*DescribeMapResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method DescribeMap not implemented")
+}
+func (UnimplementedPositionServiceServer) ListSuites(context.Context, *ListSuitesRequest) (*ListSuitesResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method ListSuites not implemented")
+}
+func (UnimplementedPositionServiceServer) DescribeSuite(context.Context, *DescribeSuiteRequest) (*DescribeSuiteResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method DescribeSuite not implemented")
+}
+func (UnimplementedPositionServiceServer) UploadMap(grpc.ClientStreamingServer[UploadMapRequest, UploadMapResponse]) error {
+	return status.Error(codes.Unimplemented, "method UploadMap not implemented")
 }
 func (UnimplementedPositionServiceServer) mustEmbedUnimplementedPositionServiceServer() {}
 func (UnimplementedPositionServiceServer) testEmbeddedByValue()                         {}
@@ -160,6 +314,132 @@ func _PositionService_Where_Handler(srv interface{}, ctx context.Context, dec fu
 	return interceptor(ctx, in, info, handler)
 }
 
+func _PositionService_Follow_Handler(srv interface{}, stream grpc.ServerStream) error {
+	m := new(FollowRequest)
+	if err := stream.RecvMsg(m); err != nil {
+		return err
+	}
+	return srv.(PositionServiceServer).Follow(m, &grpc.GenericServerStream[FollowRequest, FollowResponse]{ServerStream: stream})
+}
+
+// This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
+type PositionService_FollowServer = grpc.ServerStreamingServer[FollowResponse]
+
+func _PositionService_ListVehicles_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(ListVehiclesRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).ListVehicles(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_ListVehicles_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).ListVehicles(ctx, req.(*ListVehiclesRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _PositionService_EndDrive_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(EndDriveRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).EndDrive(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_EndDrive_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).EndDrive(ctx, req.(*EndDriveRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _PositionService_ListMaps_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(ListMapsRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).ListMaps(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_ListMaps_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).ListMaps(ctx, req.(*ListMapsRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _PositionService_DescribeMap_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(DescribeMapRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).DescribeMap(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_DescribeMap_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).DescribeMap(ctx, req.(*DescribeMapRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _PositionService_ListSuites_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(ListSuitesRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).ListSuites(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_ListSuites_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).ListSuites(ctx, req.(*ListSuitesRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _PositionService_DescribeSuite_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(DescribeSuiteRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).DescribeSuite(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_DescribeSuite_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).DescribeSuite(ctx, req.(*DescribeSuiteRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _PositionService_UploadMap_Handler(srv interface{}, stream grpc.ServerStream) error {
+	return srv.(PositionServiceServer).UploadMap(&grpc.GenericServerStream[UploadMapRequest, UploadMapResponse]{ServerStream: stream})
+}
+
+// This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
+type PositionService_UploadMapServer = grpc.ClientStreamingServer[UploadMapRequest, UploadMapResponse]
+
 // PositionService_ServiceDesc is the grpc.ServiceDesc for PositionService service.
 // It's only intended for direct use with grpc.RegisterService,
 // and not to be introspected or modified (even as a copy)
@@ -171,12 +451,46 @@ var PositionService_ServiceDesc = grpc.ServiceDesc{
 			MethodName: "Where",
 			Handler:    _PositionService_Where_Handler,
 		},
+		{
+			MethodName: "ListVehicles",
+			Handler:    _PositionService_ListVehicles_Handler,
+		},
+		{
+			MethodName: "EndDrive",
+			Handler:    _PositionService_EndDrive_Handler,
+		},
+		{
+			MethodName: "ListMaps",
+			Handler:    _PositionService_ListMaps_Handler,
+		},
+		{
+			MethodName: "DescribeMap",
+			Handler:    _PositionService_DescribeMap_Handler,
+		},
+		{
+			MethodName: "ListSuites",
+			Handler:    _PositionService_ListSuites_Handler,
+		},
+		{
+			MethodName: "DescribeSuite",
+			Handler:    _PositionService_DescribeSuite_Handler,
+		},
 	},
 	Streams: []grpc.StreamDesc{
 		{
 			StreamName:    "Feed",
 			Handler:       _PositionService_Feed_Handler,
 			ServerStreams: true,
+			ClientStreams: true,
+		},
+		{
+			StreamName:    "Follow",
+			Handler:       _PositionService_Follow_Handler,
+			ServerStreams: true,
+		},
+		{
+			StreamName:    "UploadMap",
+			Handler:       _PositionService_UploadMap_Handler,
 			ClientStreams: true,
 		},
 	},
