@@ -1,0 +1,414 @@
+package logfile
+
+import (
+	"errors"
+	"fmt"
+	"io"
+	"math"
+	"slices"
+	"strings"
+
+	"leadline/engine/geo"
+	"leadline/engine/kernel"
+	"leadline/engine/sensor"
+)
+
+// NMEA makes records of NMEA 0183 lines. One goroutine may use it.
+type NMEA struct {
+	o      *Sentences
+	emit   Emit
+	tally  *Tally
+	prefix timeParser
+
+	place  place
+	utc    utc
+	epochs epochs
+	chosen [quantities]source
+
+	rate    rateState
+	head    headState
+	motion  motionState
+	tracked sensor.Time // when a speed over ground was last reckoned with
+}
+
+// source is the sentence that gives a quantity.
+type source struct {
+	address string
+	rank    int
+	last    sensor.Time
+}
+
+type rateState struct {
+	begun bool
+	at    sensor.Time
+	dpm   float64
+}
+
+type headState struct {
+	known    bool
+	at       sensor.Time
+	rad      float64
+	sigmaRad float64
+}
+
+// NewNMEA reads lines by what o says, which must be valid; name is the log's
+// in places.
+func NewNMEA(name string, o *Sentences, emit Emit) *NMEA {
+	n := &NMEA{o: o, emit: emit, tally: newTally(name)}
+	if o.Time.From == FromPrefix {
+		n.prefix, _ = o.Time.compile()
+	}
+	if o.Time.Date != "" {
+		n.utc.day, _ = parseDate(o.Time.Date)
+	}
+	return n
+}
+
+// ReadNMEA reads a whole log. The error is one of the reader, of emit, or says
+// that no line could be given a time.
+func ReadNMEA(r io.Reader, name string, o *Sentences, emit Emit) (*Tally, error) {
+	if o.Time.From == FromArrival {
+		return newTally(name), fmt.Errorf("%s: nobody knows when its sentences arrived: take the times from sentence, prefix or tag", name)
+	}
+	n := NewNMEA(name, o, emit)
+	lines := NewLines(r, MaxSentenceLine)
+	for {
+		line, whole, err := lines.Next()
+		if errors.Is(err, io.EOF) {
+			err = n.End()
+			return n.Tally(), err
+		}
+		if err != nil {
+			return n.Tally(), fmt.Errorf("%s:%d: %w", name, n.place.line+1, err)
+		}
+		if err := n.Line(line, whole, 0); err != nil {
+			return n.Tally(), err
+		}
+	}
+}
+
+// Tally returns what became of the lines so far.
+func (n *NMEA) Tally() *Tally { return n.tally.Sum() }
+
+// Line takes the next line. whole is false for the beginning of one that was
+// longer than MaxSentenceLine; arrived is used where times are those of
+// arrival. The error is that of Emit alone.
+func (n *NMEA) Line(line []byte, whole bool, arrived sensor.Time) error {
+	n.tally.Lines++
+	n.place = place{n.tally.Lines, 1}
+	if !whole {
+		n.refuse(&refusal{1, "a line that is too long", fmt.Sprintf("over %d bytes: %.40q", MaxSentenceLine, line)})
+		return nil
+	}
+	s, pass, bad := frame(line)
+	if i := strings.IndexByte(string(s.before), '$'); i >= 0 {
+		n.refuse(&refusal{i + 1, "cut off by the next sentence", string(s.before[i:])})
+	}
+	switch {
+	case bad != nil:
+		n.refuse(bad)
+		return nil
+	case pass != "":
+		n.tally.pass(string(pass))
+		return nil
+	}
+	said, used, bad := s.read()
+	switch {
+	case bad != nil:
+		n.refuse(bad)
+		return nil
+	case !used:
+		n.tally.pass(s.kind())
+		return nil
+	case said.void:
+		n.tally.pass(s.kind() + " without a value")
+	}
+	switch n.o.Time.From {
+	case "", FromSentence:
+		return n.bySentence(&s, &said)
+	case FromPrefix:
+		text := strings.Trim(string(s.before), " \t,;|[]")
+		at, err := n.prefix(text)
+		if err != nil {
+			n.refuse(&refusal{1, "the time before the sentence", fmt.Sprintf("%.40q: %v", text, err)})
+			return nil
+		}
+		return n.all(said.readings, at)
+	case FromTag:
+		at, there, err := tagTime(s.before)
+		switch {
+		case err != nil:
+			n.refuse(&refusal{1, "tag block", fmt.Sprintf("%.60q: %v", s.before, err)})
+			return nil
+		case there:
+			n.utc.last, n.utc.known = at, true
+		case !n.utc.known:
+			n.tally.pass("before the first time")
+			return nil
+		}
+		return n.all(said.readings, n.utc.last)
+	}
+	return n.all(said.readings, arrived)
+}
+
+// End hands on what waits for the time to go on. Nothing may follow.
+func (n *NMEA) End() error {
+	if n.epochs.begun {
+		if err := n.use(n.epochs.end()); err != nil {
+			return err
+		}
+	}
+	if n.o.Time.From == "" || n.o.Time.From == FromSentence {
+		if !n.utc.known {
+			return fmt.Errorf("%s: no sentence says the time and the date (ZDA, or RMC with a fix): state the date, or take the times from a prefix or a tag", n.tally.Log)
+		}
+	}
+	return nil
+}
+
+func (n *NMEA) refuse(r *refusal) {
+	n.tally.refuse(place{n.place.line, r.byte}, r.reason, r.detail)
+}
+
+// all uses readings that have one time.
+func (n *NMEA) all(rs []reading, at sensor.Time) error {
+	for i := range rs {
+		rs[i].at, rs[i].place = at, n.place
+	}
+	slices.SortStableFunc(rs, headingsFirst)
+	return n.use(rs)
+}
+
+func headingsFirst(a, b reading) int {
+	first := func(r reading) int {
+		if r.of == heading {
+			return 0
+		}
+		return 1
+	}
+	return first(a) - first(b)
+}
+
+// bySentence gives readings the time that the sentence says, or the epoch's.
+func (n *NMEA) bySentence(s *sentence, said *said) error {
+	var at sensor.Time
+	if said.hasTime {
+		if !said.trust && !n.utc.known && n.utc.day.IsZero() {
+			n.tally.pass(s.kind() + " before the receiver knows the time")
+			return nil
+		}
+		var ok bool
+		if said.day.IsZero() {
+			at, ok = n.utc.undated(said.ns)
+		} else {
+			at, ok = n.utc.dated(said.day, said.ns)
+		}
+		if !ok {
+			if !n.utc.known {
+				n.tally.pass("before the first date")
+			} else {
+				n.refuse(&refusal{1, s.kind() + ": its time goes back", fmt.Sprintf("%v after %v", clock(at), clock(n.utc.last))})
+			}
+			return nil
+		}
+		if !n.epochs.begun || at > n.epochs.from {
+			if err := n.use(n.epochs.begin(at)); err != nil {
+				return err
+			}
+		}
+	}
+	for _, r := range said.readings {
+		if r.timed && !said.hasTime {
+			n.tally.pass(s.kind() + " without a time")
+			continue
+		}
+		if !n.epochs.begun {
+			n.tally.pass("before the first time")
+			continue
+		}
+		if r.timed {
+			r.at = at
+		}
+		r.place = n.place
+		if !n.epochs.add(r) {
+			n.refuse(&refusal{1, "too long without a time", fmt.Sprintf("%d readings wait for the next ZDA, RMC, GGA or GLL", maxPending)})
+		}
+	}
+	return nil
+}
+
+// use takes readings whose times are known, in their order.
+func (n *NMEA) use(rs []reading) error {
+	for i := range rs {
+		r := &rs[i]
+		n.place = r.place
+		if !n.choose(r) {
+			continue
+		}
+		if err := n.record(r); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// fallback is how long the sentence that gives a quantity may be silent
+// before another one takes its place.
+const fallback = sensor.Time(5e9)
+
+// choose says whether a reading is the one to use for its quantity. A better
+// sentence takes over from its next reading on, since this one says what the
+// one before has just said.
+func (n *NMEA) choose(r *reading) bool {
+	kind := r.address[2:]
+	name := quantityTable[r.of].name
+	if !n.o.uses(r.of) {
+		n.tally.pass(kind + ": " + name + " is not used")
+		return false
+	}
+	if n.o.Satellites != "" && n.o.Satellites != SatellitesFix && r.of == groundSpeed && !r.body {
+		n.tally.pass(kind + ": " + name + " of satellites")
+		return false
+	}
+	rank := slices.IndexFunc(n.o.from(r.of), func(f string) bool { return f == kind || f == r.address })
+	if rank < 0 {
+		n.tally.pass(kind + ": not asked for " + name)
+		return false
+	}
+	c := &n.chosen[r.of]
+	switch fresh := c.address != "" && r.at-c.last <= fallback; {
+	case c.address == r.address, !fresh:
+		*c = source{r.address, rank, max(r.at, c.last)}
+		return true
+	case rank < c.rank:
+		*c = source{r.address, rank, c.last}
+	}
+	n.tally.pass(kind + ": another sentence gives " + name)
+	return false
+}
+
+// record makes what a reading becomes.
+func (n *NMEA) record(r *reading) error {
+	c := &cells{num: map[string]float64{}}
+	kind, since := "", r.at
+	switch r.of {
+	case depth:
+		kind = sensor.KindSounding
+		c.num["depth_below_transducer_m"] = r.v
+		c.num["transducer_depth_m"] = n.o.Depth.TransducerDepthM
+		if r.has {
+			c.num["transducer_depth_m"] = r.extra
+		}
+		c.num["sigma_m"] = n.o.sigma(depth, depthSigmaM(r.v))
+	case heading:
+		if !n.heading(r, c) {
+			return nil
+		}
+		kind = sensor.KindHeading
+	case turnRate:
+		last := n.rate
+		n.rate = rateState{true, r.at, r.v}
+		dt := r.at.Seconds(last.at)
+		if !last.begun || r.at-last.at > maxRateGap || dt <= 0 {
+			n.tally.pass("ROT: the first of a turn")
+			return nil
+		}
+		kind, since = sensor.KindTurn, last.at
+		dpm := 0.5 * (last.dpm + r.v)
+		c.num["angle_deg"] = dpm / 60 * dt
+		c.num["sigma_deg"] = n.o.sigma(turnRate, turnRateSigmaDPM(dpm)/60) * math.Sqrt(dt*math.Max(dt, 1))
+	case waterSpeed, groundSpeed:
+		if n.o.Reckon != nil && r.body {
+			return n.reckon(r)
+		}
+		kind = sensor.KindSpeed
+		c.num["mps"] = r.v
+		c.num["sigma_mps"] = n.o.sigma(r.of, groundSpeedSigmaMPS)
+		if r.of == waterSpeed {
+			c.num["sigma_mps"] = n.o.sigma(r.of, waterSpeedSigmaMPS)
+		}
+		if r.has && !r.body {
+			c.num["course_deg"] = r.extra
+		}
+	case fix:
+		c.num["lon"], c.num["lat"], c.num["sigma_m"] = r.lon, r.lat, n.o.sigma(fix, r.sigmaM)
+		if n.o.Satellites == SatellitesTruth {
+			if r.has {
+				c.num["height_m"] = r.extra
+			}
+			t, err := truth(c, r.at)
+			return n.hand(r, Record{Truth: t}, err)
+		}
+		kind = sensor.KindFix
+	}
+	m, err := measurement(kind, c, since, r.at)
+	return n.event(r, n.o.sensor(r.of), m, err)
+}
+
+// event hands a measurement on.
+func (n *NMEA) event(r *reading, name string, m sensor.Measurement, err error) error {
+	return n.hand(r, Record{Event: &sensor.Event{Time: r.at, Sensor: name, Number: uint64(r.place.line), Measurement: m}}, err)
+}
+
+func (n *NMEA) hand(r *reading, rec Record, err error) error {
+	if err != nil {
+		n.refuse(&refusal{1, r.address[2:] + ": unusable", err.Error()})
+		return nil
+	}
+	n.tally.took(rec)
+	return n.emit(rec)
+}
+
+// heading makes a heading true; false if that cannot be.
+func (n *NMEA) heading(r *reading, c *cells) bool {
+	deg, sigma := r.v, float64(trueHeadingSigmaDeg)
+	if r.magnetic {
+		sigma = magneticHeadingSigmaDeg
+	}
+	if r.reduce {
+		if n.o.VariationDeg == nil {
+			n.refuse(&refusal{1, r.address[2:] + ": a magnetic heading without the variation", "state the variation"})
+			return false
+		}
+		deg += *n.o.VariationDeg
+	}
+	c.num["deg"] = math.Mod(deg+720, 360)
+	c.num["sigma_deg"] = n.o.sigma(heading, sigma)
+	n.head = headState{true, r.at, geo.Rad(c.num["deg"]), geo.Rad(or(n.o.sigma(heading, sigma), sigma))}
+	return true
+}
+
+// reckon makes a displacement of a speed in the craft's axes.
+func (n *NMEA) reckon(r *reading) error {
+	ground := r.of == groundSpeed
+	if ground {
+		n.tracked = r.at
+	} else if n.tracked != 0 && r.at-n.tracked <= fallback {
+		n.tally.pass(r.address[2:] + ": reckoned over ground")
+		return nil
+	}
+	if !n.head.known || r.at-n.head.at > maxHeadingAge {
+		n.tally.pass(r.address[2:] + ": no heading to reckon with")
+		return nil
+	}
+	sin, cos := kernel.Sincos(n.head.rad)
+	now := motionState{
+		at: r.at, headingRad: n.head.rad, headingSigma: n.head.sigmaRad, ground: ground, across: r.has,
+		east: r.v * sin, north: r.v * cos,
+	}
+	if deg := n.o.Reckon.HeadingSigmaDeg; deg != 0 {
+		now.headingSigma = geo.Rad(deg)
+	}
+	if r.has {
+		now.east += r.extra * cos
+		now.north -= r.extra * sin
+	}
+	last := n.motion
+	n.motion = now
+	m, ok := n.o.Reckon.displacement(last, now)
+	if !ok {
+		n.tally.pass(r.address[2:] + ": the first of a displacement")
+		return nil
+	}
+	return n.event(r, n.o.Reckon.sensor(), m, m.Check(r.at))
+}
