@@ -45,13 +45,14 @@ const (
 
 // Add takes one event and returns the posteriors that it releases, oldest
 // first; one that supersedes an earlier posterior of the same time says so
-// (Revises). A duplicate (same time, sensor, number and values) is accepted
+// (Revises). Those that it takes back are in Withdrawn. A duplicate (same time, sensor, number and values) is accepted
 // and changes nothing. An error is a *Refusal.
 //
 // A time is computed when every motion sensor seen so far covers it, or when
 // events hold_s later have come without it; and again when an event comes that
 // changes it. Releases that were not changed are not repeated.
 func (s *Session) Add(ev sensor.Event) ([]*summary.Posterior, error) {
+	s.withdrawn = nil
 	ps, err := s.add(ev)
 	if err != nil {
 		s.refused++
@@ -202,11 +203,15 @@ func (s *Session) reaches(from sensor.Time) error {
 // after it go on from there, counting for their part after it; events before
 // it are refused.
 func (s *Session) Flush() []*summary.Posterior {
+	s.withdrawn = nil
 	out := s.run(true)
 	if s.state.unread {
 		if p := s.summarise(); s.release(p) {
 			out = append(out, p)
 		}
+	}
+	for i := len(s.superseded) - 1; i >= 0; i-- {
+		s.withdrawn = append(s.withdrawn, sensor.Time(s.superseded[i].TimeNS))
 	}
 	s.superseded = nil
 	s.finish(len(s.recent))

@@ -1,6 +1,7 @@
 package session
 
 import (
+	"cmp"
 	"errors"
 	"math"
 	"math/rand/v2"
@@ -96,21 +97,48 @@ type outcome struct {
 	s          *Session
 	hash       string
 	posteriors []*summary.Posterior
+	// How many were revised, and withdrawn.
+	revised, withdrawn int
+}
+
+// follow is the hash that a follower comes to.
+func (o *outcome) follow() string {
+	h := summary.NewHasher()
+	for _, p := range o.posteriors {
+		h.Add(p)
+	}
+	return h.Sum()
 }
 
 func (o *outcome) take(t testing.TB, ps []*summary.Posterior) {
 	t.Helper()
 	for _, p := range ps {
-		i, found := slices.BinarySearchFunc(o.posteriors, p.TimeNS, func(q *summary.Posterior, ns int64) int { return int(q.TimeNS - ns) })
+		i, found := o.find(p.TimeNS)
 		if found != p.Revises {
 			t.Fatalf("the posterior of %d says Revises = %v, but that there was one is %v", p.TimeNS, p.Revises, found)
 		}
 		if found {
 			o.posteriors[i] = p
+			o.revised++
 		} else {
 			o.posteriors = slices.Insert(o.posteriors, i, p)
 		}
 	}
+	if o.s == nil {
+		return
+	}
+	for _, at := range o.s.Withdrawn() {
+		i, found := o.find(int64(at))
+		if !found {
+			t.Fatalf("the posterior of %d is withdrawn and was not there", at)
+		}
+		o.posteriors = slices.Delete(o.posteriors, i, i+1)
+		o.withdrawn++
+	}
+}
+
+func (o *outcome) find(ns int64) (int, bool) {
+	return slices.BinarySearchFunc(o.posteriors, ns, func(q *summary.Posterior, ns int64) int { return cmp.Compare(q.TimeNS, ns) })
 }
 
 // feed adds events, none of which may be refused, and flushes.

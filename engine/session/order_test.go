@@ -107,6 +107,7 @@ func TestOrderOfArrivalDoesNotMatter(t *testing.T) {
 		if n := len(want.posteriors); c.name != "wide" && n != len(distinct) || c.name == "wide" && (n > len(distinct)*2/3 || n < 20) {
 			t.Errorf("%s: %d posteriors of %d times", c.name, n, len(distinct))
 		}
+		revised, withdrawn := 0, 0
 		for seed := range c.orders {
 			t.Run(fmt.Sprintf("%s/seed=%d", c.name, seed), func(t *testing.T) {
 				rng := rand.New(rand.NewPCG(seed, 1))
@@ -118,9 +119,11 @@ func TestOrderOfArrivalDoesNotMatter(t *testing.T) {
 				}
 				got := feed(t, c.open(t), arriving)
 				sameState(t, want.s, got.s)
-				if c.name != "wide" { // there a posterior once released may be passed over later
-					samePosteriors(t, want.posteriors, got.posteriors)
+				samePosteriors(t, want.posteriors, got.posteriors)
+				if got.follow() != got.hash {
+					t.Error("one who follows what is released, revised and withdrawn comes to another hash")
 				}
+				revised, withdrawn = revised+got.revised, withdrawn+got.withdrawn
 				if accepted, refused := got.s.Counts(); accepted != uint64(len(events)+20) || refused != 0 {
 					t.Errorf("%d accepted, %d refused", accepted, refused)
 				}
@@ -128,6 +131,10 @@ func TestOrderOfArrivalDoesNotMatter(t *testing.T) {
 					t.Errorf("the posterior counts %d measurements, %d were different", n, len(events))
 				}
 			})
+		}
+		t.Logf("%s: %d revised, %d withdrawn", c.name, revised, withdrawn)
+		if revised == 0 || (withdrawn > 0) != (c.name == "wide") {
+			t.Errorf("%s: %d were revised and %d withdrawn: late events should do both to a wide belief, and the first to another", c.name, revised, withdrawn)
 		}
 	}
 }

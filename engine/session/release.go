@@ -2,6 +2,7 @@ package session
 
 import (
 	"cmp"
+	"reflect"
 	"slices"
 
 	"leadline/engine/sensor"
@@ -18,11 +19,13 @@ func (s *Session) release(p *summary.Posterior) bool {
 	for n := len(s.superseded); n > 0 && s.superseded[n-1].TimeNS <= p.TimeNS; n-- {
 		old := s.superseded[n-1]
 		s.superseded = s.superseded[:n-1]
-		if old.TimeNS == p.TimeNS {
-			p.Revises = old.Revises
-			if news = !sameAnswer(old, p); news {
-				p.Revises = true
-			}
+		if old.TimeNS < p.TimeNS {
+			s.withdrawn = append(s.withdrawn, sensor.Time(old.TimeNS)) // passed over now
+			continue
+		}
+		p.Revises = old.Revises
+		if news = !sameAnswer(old, p); news {
+			p.Revises = true
 		}
 	}
 	s.recent = append(s.recent, p)
@@ -34,16 +37,27 @@ func (s *Session) release(p *summary.Posterior) bool {
 	return news
 }
 
+// Withdrawn returns the times, in order, of posteriors that were released and
+// that the last Add or Flush took back without another one in their place: a
+// late event made the belief so wide that these times are passed over. Who
+// keeps what is released, puts those that revise in place of the earlier ones
+// and drops those that are withdrawn has, after Flush, exactly the posteriors
+// that the hash is over. Add gives no time back in the call that withdraws it;
+// a later one may, as a new posterior.
+func (s *Session) Withdrawn() []sensor.Time { return s.withdrawn }
+
 // inWindow reports whether an event may change what was at a time.
 func (s *Session) inWindow(t sensor.Time) bool {
 	return s.reached.Seconds(t) <= s.suite.Vehicle.LateWindowS
 }
 
-// sameAnswer compares what enters the hash, and what may differ without it.
+// sameAnswer compares all that two posteriors say, but for how many events
+// there were: a radius may differ in its last bit where mean and covariance do
+// not.
 func sameAnswer(a, b *summary.Posterior) bool {
-	return a.Status == b.Status && a.MeanFrame == b.MeanFrame && a.CovFrame == b.CovFrame && a.LogEvidence == b.LogEvidence &&
-		a.Heading == b.Heading && a.Speed == b.Speed && a.GapS == b.GapS &&
-		slices.Equal(a.Nuisances, b.Nuisances) && slices.Equal(a.Evidence, b.Evidence)
+	p, q := *a, *b
+	p.Revises, p.Counts.Accepted, p.Counts.Refused = q.Revises, q.Counts.Accepted, q.Counts.Refused
+	return reflect.DeepEqual(p, q) // no figure is NaN
 }
 
 // finish makes the recent posteriors below n final.

@@ -133,6 +133,7 @@ type Session struct {
 	final  int
 	// superseded are posteriors that a late event took back, latest first.
 	superseded []*summary.Posterior
+	withdrawn  []sensor.Time // by the last Add or Flush
 	hasher     *summary.Hasher
 	accepted   uint64
 	refused    uint64

@@ -7,7 +7,6 @@ import (
 	"fmt"
 	"math"
 	"slices"
-	"sort"
 	"time"
 
 	"leadline/engine/drivefile"
@@ -113,7 +112,7 @@ func Run(d *drivefile.Drive, c session.Config, o Options) (*Result, error) {
 				return nil, err
 			}
 		}
-		r.take(ps)
+		r.take(ps, s.Withdrawn())
 		now := time.Now()
 		took = append(took, now.Sub(last).Seconds()*1e3)
 		last = now
@@ -121,7 +120,7 @@ func Run(d *drivefile.Drive, c session.Config, o Options) (*Result, error) {
 			o.Progress(i+1, len(events))
 		}
 	}
-	r.take(s.Flush())
+	r.take(s.Flush(), s.Withdrawn())
 	r.Accepted, r.Refused = s.Counts()
 	r.Hash = s.Hash()
 	r.time(time.Since(began).Seconds(), took, events)
@@ -172,21 +171,31 @@ func (r *Result) refuse(ev sensor.Event, err error) error {
 	return nil
 }
 
-// take puts posteriors at their places by time, in place of what they revise.
-func (r *Result) take(ps []*summary.Posterior) {
+// take puts posteriors at their places by time, in place of what they revise,
+// and drops those that are withdrawn.
+func (r *Result) take(ps []*summary.Posterior, withdrawn []sensor.Time) {
+	for _, t := range withdrawn {
+		if i, found := r.find(int64(t)); found {
+			r.Posteriors = slices.Delete(r.Posteriors, i, i+1)
+		}
+	}
 	for _, p := range ps {
 		n := len(r.Posteriors)
 		if n == 0 || r.Posteriors[n-1].TimeNS < p.TimeNS {
 			r.Posteriors = append(r.Posteriors, p)
 			continue
 		}
-		i := sort.Search(n, func(i int) bool { return r.Posteriors[i].TimeNS >= p.TimeNS })
-		if r.Posteriors[i].TimeNS == p.TimeNS {
+		i, found := r.find(p.TimeNS)
+		if found {
 			r.Posteriors[i] = p
 		} else {
 			r.Posteriors = slices.Insert(r.Posteriors, i, p)
 		}
 	}
+}
+
+func (r *Result) find(ns int64) (int, bool) {
+	return slices.BinarySearchFunc(r.Posteriors, ns, func(p *summary.Posterior, ns int64) int { return cmp.Compare(p.TimeNS, ns) })
 }
 
 func (r *Result) time(filterS float64, tookMs []float64, events []sensor.Event) {
