@@ -202,6 +202,32 @@ func (f *Feed) Close() (*leadlinev1.Closed, error) {
 	return f.closed, f.err
 }
 
+// Leave sends what waits and ends the stream once the server has taken it. The
+// drive stays open at the server, and goes on when it is opened again under its
+// name.
+func (f *Feed) Leave() error {
+	defer f.cancel()
+	err := f.Flush()
+	if err == nil {
+		select {
+		case <-f.done: // ended by the server, before it was asked to
+			return f.failure()
+		default:
+		}
+		_ = f.stream.CloseSend() // an error of it is told by Recv
+		<-f.done
+		if errors.Is(f.err, errSilent) {
+			return nil
+		}
+		return f.failure()
+	}
+	f.Abort()
+	return err
+}
+
+// errSilent ends a stream whose drive did not end.
+var errSilent = errors.New("client: the server ended the stream without a word")
+
 // Abort breaks the stream off. The drive stays open at the server, and goes on
 // when it is opened again under its name.
 func (f *Feed) Abort() {
@@ -218,7 +244,7 @@ func (f *Feed) receive() {
 		switch {
 		case errors.Is(err, io.EOF):
 			if f.closed == nil {
-				f.err = errors.New("client: the server ended the stream without a word")
+				f.err = errSilent
 			}
 			return
 		case err != nil:
