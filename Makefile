@@ -12,7 +12,7 @@ FUZZ_TIME ?= 60s
 
 # The packages that start goroutines; a test in engine/ compares the list with
 # the code. A tree may be named before it exists.
-RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/journal/... ./cmd/...
+RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/livelog/... ./engine/journal/... ./cmd/...
 
 .PHONY: build test race fuzz bench fetch fetch-arrow generate generate-check format \
 	format-check vet lint lint-only vuln licences licences-check clean

@@ -47,6 +47,7 @@ var mayImport = map[string][]string{
 	},
 	"engine/client":  {api},
 	"engine/logfile": {"engine/sensor", "engine/geo"},
+	"engine/livelog": {"engine/logfile"},
 	"engine/study/...": {
 		"engine/session", "engine/traffic", "engine/summary", "engine/filter", "engine/sensor",
 		"engine/geo", "engine/drivefile", "engine/logfile", "engine/journal",
