@@ -103,7 +103,6 @@ func (s *Suite) Quantities(dim int) []filter.Quantity {
 		return d.Kind == KindTravel || d.Kind == KindBodyDisplacement || d.has(NuisanceOdometerScale)
 	})
 	var qs []filter.Quantity
-	priorHeading := geo.Rad(10)
 	if dim == 1 {
 		qs = append(qs, filter.Quantity{Name: filter.Along})
 	} else {
@@ -111,23 +110,35 @@ func (s *Suite) Quantities(dim int) []filter.Quantity {
 			return nil
 		}
 		qs = append(qs, filter.Quantity{Name: filter.East}, filter.Quantity{Name: filter.North})
-		heading, priorHeading = true, math.Pi/math.Sqrt(3)
+		heading = true
 	}
 	if heading {
-		n := s.nuisance(NuisanceHeading, Nuisance{Sigma: geo.Deg(priorHeading), DriftPerSqrtS: 0.1})
+		n := s.nuisance(NuisanceHeading, headingDefault(dim))
 		qs = append(qs, filter.Quantity{
 			Name: filter.Heading, Angular: true, PriorMean: geo.WrapPi(geo.Rad(n.Mean)),
 			PriorVar: square(geo.Rad(n.Sigma)), DriftVar: square(geo.Rad(n.DriftPerSqrtS)),
 		})
 	}
 	if odometer {
-		n := s.nuisance(NuisanceOdometerScale, Nuisance{Sigma: 0.02, DriftPerSqrtS: 1e-5})
+		n := s.nuisance(NuisanceOdometerScale, scaleDefault)
 		qs = append(qs, filter.Quantity{
 			Name: filter.OdometerScale, PriorMean: n.Mean, PriorVar: square(n.Sigma), DriftVar: square(n.DriftPerSqrtS),
 		})
 	}
 	return qs
 }
+
+// headingDefault is the heading's nuisance where no sensor describes it.
+func headingDefault(dim int) Nuisance {
+	sigma := geo.Rad(10)
+	if dim == 2 {
+		sigma = math.Pi / math.Sqrt(3)
+	}
+	return Nuisance{Sigma: geo.Deg(sigma), DriftPerSqrtS: 0.1}
+}
+
+// scaleDefault is the odometer scale's.
+var scaleDefault = Nuisance{Sigma: 0.02, DriftPerSqrtS: 1e-5}
 
 func (d Sensor) has(nuisance string) bool {
 	for _, n := range d.Nuisances {

@@ -218,6 +218,12 @@ func (s *Session) Hash() string { return s.hasher.Sum() }
 // CellM is the width of the belief's cells now; on lines the widest.
 func (s *Session) CellM() float64 { return s.cellM() }
 
+// Cells says where the cells of the present belief are: the level on lines,
+// the lattice on a plane.
+func (s *Session) Cells() (level int, l filter.Lattice) {
+	return s.state.belief.Level, s.state.belief.Lattice
+}
+
 // ReadBelief spells out the present belief.
 func (s *Session) ReadBelief(dst *filter.Cloud) { s.state.belief.Read(dst, s.space, &s.work) }
 

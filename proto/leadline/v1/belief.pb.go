@@ -110,7 +110,8 @@ type BeliefGrid struct {
 	Last      *Position `protobuf:"bytes,6,opt,name=last,proto3" json:"last,omitempty"`
 	// A byte for each cell, row by row.
 	Mass []byte `protobuf:"bytes,7,opt,name=mass,proto3" json:"mass,omitempty"`
-	// The side of a cell, m.
+	// The side of a cell, m: the belief's own, or that doubled until there are at
+	// most 65536.
 	CellM         float64 `protobuf:"fixed64,8,opt,name=cell_m,json=cellM,proto3" json:"cell_m,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
@@ -202,7 +203,8 @@ func (x *BeliefGrid) GetCellM() float64 {
 	return 0
 }
 
-// BeliefStretch is a run of cells along a directed edge.
+// BeliefStretch is a run of cells along a directed edge. At most 8192 cells are
+// told, the heaviest ones.
 type BeliefStretch struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	Edge  uint32                 `protobuf:"varint,1,opt,name=edge,proto3" json:"edge,omitempty"`

@@ -95,15 +95,19 @@ type FollowRequest struct {
 	// Only updates whose status differs from the one told before.
 	StatusChangesOnly bool `protobuf:"varint,4,opt,name=status_changes_only,json=statusChangesOnly,proto3" json:"status_changes_only,omitempty"`
 	// Only vehicles that are inside with at least area_probability, and the
-	// first update after they no longer are.
+	// first update after they no longer are. At most 1000 points, 2000 km from
+	// the first.
 	Area *Polygon `protobuf:"bytes,5,opt,name=area,proto3" json:"area,omitempty"`
 	// Above 0, at most 1; 0.05 if left out.
 	AreaProbability *float64 `protobuf:"fixed64,6,opt,name=area_probability,json=areaProbability,proto3,oneof" json:"area_probability,omitempty"`
 	// Fractions of the probability whose regions are wanted with DETAIL_REGION;
 	// 0.95 if empty.
 	RegionFractions []float64 `protobuf:"fixed64,7,rep,packed,name=region_fractions,json=regionFractions,proto3" json:"region_fractions,omitempty"`
-	// From the last update of a stream that broke: what that stream has told is
-	// not told again. Empty: the present state of every vehicle comes first.
+	// From the last update that came through of a stream that broke: the stream
+	// goes on after that update, as if the client had been slow. The rest of the
+	// request must be as it was. A stream is kept for some minutes after it broke
+	// and not beyond the server's run: else REASON_BAD_TOKEN, and the client
+	// follows without one. Empty: the present state of every vehicle comes first.
 	ResumeToken   string `protobuf:"bytes,8,opt,name=resume_token,json=resumeToken,proto3" json:"resume_token,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
@@ -195,7 +199,9 @@ func (x *FollowRequest) GetResumeToken() string {
 	return ""
 }
 
-// FollowResponse is news of one vehicle.
+// FollowResponse is news of one vehicle. Several posteriors may come together,
+// after a late measurement or a wait: only the last of them is told where an
+// area, DETAIL_REGION or DETAIL_BELIEF is asked for.
 type FollowResponse struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// The vehicle's name.
@@ -211,8 +217,8 @@ type FollowResponse struct {
 	// With DETAIL_BELIEF, beside a posterior.
 	Belief *Belief `protobuf:"bytes,6,opt,name=belief,proto3" json:"belief,omitempty"`
 	// Posteriors of this vehicle since its last update that this stream was too
-	// slow for; those left out by min_interval_s, status_changes_only or area are
-	// not counted.
+	// slow for, or that were on their way when it broke; those left out by
+	// min_interval_s, status_changes_only or area are not counted.
 	Skipped uint64 `protobuf:"varint,7,opt,name=skipped,proto3" json:"skipped,omitempty"`
 	// For resuming after this update.
 	ResumeToken   string `protobuf:"bytes,8,opt,name=resume_token,json=resumeToken,proto3" json:"resume_token,omitempty"`

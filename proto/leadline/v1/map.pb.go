@@ -514,7 +514,10 @@ func (x *ListSuitesResponse) GetSuites() []string {
 type DescribeSuiteRequest struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// Its name. Required.
-	Suite         string `protobuf:"bytes,1,opt,name=suite,proto3" json:"suite,omitempty"`
+	Suite string `protobuf:"bytes,1,opt,name=suite,proto3" json:"suite,omitempty"`
+	// The kind of map that it is wanted for, whose defaults are filled in; roads
+	// if left out.
+	Kind          MapKind `protobuf:"varint,2,opt,name=kind,proto3,enum=leadline.v1.MapKind" json:"kind,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -556,12 +559,21 @@ func (x *DescribeSuiteRequest) GetSuite() string {
 	return ""
 }
 
+func (x *DescribeSuiteRequest) GetKind() MapKind {
+	if x != nil {
+		return x.Kind
+	}
+	return MapKind_MAP_KIND_UNSPECIFIED
+}
+
 // DescribeSuiteResponse is the answer.
 type DescribeSuiteResponse struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	Name  string                 `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
-	// The suite as a file, YAML, defaults filled in.
-	Yaml          string `protobuf:"bytes,2,opt,name=yaml,proto3" json:"yaml,omitempty"`
+	// The suite as a file, YAML, defaults filled in. A figure that is 0 is left
+	// out.
+	Yaml string `protobuf:"bytes,2,opt,name=yaml,proto3" json:"yaml,omitempty"`
+	// SHA-256 of that text, hexadecimal.
 	Fingerprint   string `protobuf:"bytes,3,opt,name=fingerprint,proto3" json:"fingerprint,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
@@ -866,9 +878,10 @@ const file_leadline_v1_map_proto_rawDesc = "" +
 	"\x0eolder_sessions\x18\x11 \x01(\rR\rolderSessions\"\x13\n" +
 	"\x11ListSuitesRequest\",\n" +
 	"\x12ListSuitesResponse\x12\x16\n" +
-	"\x06suites\x18\x01 \x03(\tR\x06suites\",\n" +
+	"\x06suites\x18\x01 \x03(\tR\x06suites\"V\n" +
 	"\x14DescribeSuiteRequest\x12\x14\n" +
-	"\x05suite\x18\x01 \x01(\tR\x05suite\"a\n" +
+	"\x05suite\x18\x01 \x01(\tR\x05suite\x12(\n" +
+	"\x04kind\x18\x02 \x01(\x0e2\x14.leadline.v1.MapKindR\x04kind\"a\n" +
 	"\x15DescribeSuiteResponse\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x12\n" +
 	"\x04yaml\x18\x02 \x01(\tR\x04yaml\x12 \n" +
@@ -926,14 +939,15 @@ var file_leadline_v1_map_proto_depIdxs = []int32{
 	0,  // 2: leadline.v1.MapDescription.kind:type_name -> leadline.v1.MapKind
 	13, // 3: leadline.v1.MapDescription.south_west:type_name -> leadline.v1.Position
 	13, // 4: leadline.v1.MapDescription.north_east:type_name -> leadline.v1.Position
-	11, // 5: leadline.v1.UploadMapRequest.beginning:type_name -> leadline.v1.MapBeginning
-	0,  // 6: leadline.v1.MapBeginning.kind:type_name -> leadline.v1.MapKind
-	5,  // 7: leadline.v1.UploadMapResponse.map:type_name -> leadline.v1.MapDescription
-	8,  // [8:8] is the sub-list for method output_type
-	8,  // [8:8] is the sub-list for method input_type
-	8,  // [8:8] is the sub-list for extension type_name
-	8,  // [8:8] is the sub-list for extension extendee
-	0,  // [0:8] is the sub-list for field type_name
+	0,  // 5: leadline.v1.DescribeSuiteRequest.kind:type_name -> leadline.v1.MapKind
+	11, // 6: leadline.v1.UploadMapRequest.beginning:type_name -> leadline.v1.MapBeginning
+	0,  // 7: leadline.v1.MapBeginning.kind:type_name -> leadline.v1.MapKind
+	5,  // 8: leadline.v1.UploadMapResponse.map:type_name -> leadline.v1.MapDescription
+	9,  // [9:9] is the sub-list for method output_type
+	9,  // [9:9] is the sub-list for method input_type
+	9,  // [9:9] is the sub-list for extension type_name
+	9,  // [9:9] is the sub-list for extension extendee
+	0,  // [0:9] is the sub-list for field type_name
 }
 
 func init() { file_leadline_v1_map_proto_init() }

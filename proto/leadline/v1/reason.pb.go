@@ -58,7 +58,8 @@ const (
 	Reason_REASON_BAD_START Reason = 25
 	// The drive was opened before with another header. FAILED_PRECONDITION.
 	Reason_REASON_OTHER_HEADER Reason = 26
-	// The vehicle has another unfinished drive. ALREADY_EXISTS.
+	// The vehicle has another drive: unfinished, when one is opened; not the one
+	// that is named, when one is ended. ALREADY_EXISTS.
 	Reason_REASON_OTHER_DRIVE Reason = 27
 	// A batch came out of its order. FAILED_PRECONDITION.
 	Reason_REASON_OUT_OF_ORDER Reason = 28
