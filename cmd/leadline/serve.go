@@ -23,6 +23,7 @@ const defaultAddress = "127.0.0.1:7700"
 
 type serveOptions struct {
 	maps, suites        []string
+	origins             []string
 	listen              string
 	plainBeyondLoopback bool
 	maxCells, vehicles  int
@@ -48,6 +49,7 @@ Nothing is durable yet: a server that stops forgets its vehicles.`,
 	f.StringArrayVar(&o.suites, "suite", nil, "suite as NAME=FILE, or FILE alone; repeat for several; the starter suites are always there")
 	f.StringVar(&o.listen, "listen", defaultAddress, "address to listen on; port 0 takes a free one")
 	f.BoolVar(&o.plainBeyondLoopback, "plain-text-beyond-loopback", false, "listen without encryption or login on an address that other machines reach")
+	f.StringArrayVar(&o.origins, "origin", nil, "origin whose pages may call from a browser, such as https://map.example; repeat for several")
 	f.IntVar(&o.vehicles, "max-vehicles", 0, "greatest number of vehicles at once (0: the server's default)")
 	f.IntVar(&o.maxCells, "max-cells", 0, "greatest number of cells of a belief (0: the session's default)")
 	f.DurationVar(&o.drainTimeout, "drain-timeout", 10*time.Second, "how long to wait for streams when stopping")
@@ -106,7 +108,7 @@ func (o *serveOptions) config() (cfg *server.Config, closeMaps func(), err error
 			m.Close()
 		}
 	}
-	cfg = &server.Config{MaxCells: o.maxCells, Suites: map[string]*sensor.Suite{}, Limits: server.Limits{Vehicles: o.vehicles}}
+	cfg = &server.Config{Origins: o.origins, MaxCells: o.maxCells, Suites: map[string]*sensor.Suite{}, Limits: server.Limits{Vehicles: o.vehicles}}
 	for _, arg := range o.maps {
 		name, path := named(arg, mapName)
 		m, err := openMap(path)

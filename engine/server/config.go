@@ -4,6 +4,7 @@ import (
 	"errors"
 	"fmt"
 	"log/slog"
+	"net/http"
 	"time"
 
 	"leadline/engine/filter"
@@ -25,6 +26,11 @@ type Config struct {
 	// MaxCells is session.Config.MaxCells.
 	MaxCells int
 	Limits   Limits
+	// Origins are those whose pages may call the API from a browser, beside
+	// pages of this server: scheme, host and port.
+	Origins []string
+	// Page answers what HTTP clients ask beside calls; nil is 404.
+	Page http.Handler
 	// Now is the clock by which answers are dated; nil is time.Now.
 	Now func() time.Time
 	// Log takes what the operator should know; nil is nothing.
@@ -73,6 +79,9 @@ type Limits struct {
 	IdleTimeout time.Duration
 	// Streams is the number of Feed calls at once. Default 2000.
 	Streams int
+	// HTTPConnections is the number of connections without gRPC: browsers hold
+	// one for each page that follows. Default 1000.
+	HTTPConnections int
 	// Openings is the number of sessions that are made at once: a start
 	// anywhere on a large map takes memory and time. Default 2.
 	Openings int
@@ -96,6 +105,7 @@ func (l *Limits) fields() []limit {
 	return []limit{
 		{"Vehicles", &l.Vehicles, 1000},
 		{"Streams", &l.Streams, 2000},
+		{"HTTPConnections", &l.HTTPConnections, 1000},
 		{"Openings", &l.Openings, 2},
 		{"MessageBytes", &l.MessageBytes, 4 << 20},
 		{"BatchMeasurements", &l.BatchMeasurements, 1024},

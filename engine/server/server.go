@@ -2,6 +2,7 @@ package server
 
 import (
 	"context"
+	"errors"
 	"log/slog"
 	"net"
 	"sync"
@@ -14,6 +15,7 @@ import (
 	"google.golang.org/grpc/keepalive"
 	"google.golang.org/grpc/reflection"
 
+	"leadline/engine/server/web"
 	"leadline/engine/session"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
@@ -25,6 +27,7 @@ type Server struct {
 
 	cfg      Config
 	grpc     *grpc.Server
+	web      *web.Server
 	health   *health.Server
 	openings chan struct{} // holds a token a session being made
 	streams  atomic.Int64
@@ -74,13 +77,36 @@ func New(cfg Config) (*Server, error) {
 	leadlinev1.RegisterPositionServiceServer(s.grpc, s)
 	healthv1.RegisterHealthServer(s.grpc, s.health)
 	reflection.Register(s.grpc)
+	var err error
+	s.web, err = web.New(web.Config{
+		MessageBytes: cfg.Limits.MessageBytes, Connections: cfg.Limits.HTTPConnections,
+		Origins: cfg.Origins, Page: cfg.Page, Log: cfg.Log,
+	})
+	if err != nil {
+		return nil, err
+	}
+	leadlinev1.RegisterPositionServiceServer(s.web, s)
+	healthv1.RegisterHealthServer(s.web, s.health)
 	s.health.SetServingStatus(leadlinev1.PositionService_ServiceDesc.ServiceName, healthv1.HealthCheckResponse_SERVING)
 	return s, nil
 }
 
 // Serve answers on a listener, which it closes, until Shutdown; then it
-// returns nil.
-func (s *Server) Serve(l net.Listener) error { return s.grpc.Serve(l) }
+// returns nil. HTTP/2 is taken for gRPC, all else for HTTP/1.1.
+func (s *Server) Serve(l net.Listener) error {
+	http2, others := web.Split(l)
+	answered := make(chan error, 1)
+	go func() { answered <- s.web.Serve(others) }()
+	err := s.grpc.Serve(http2)
+	_ = others.Close() // if gRPC's failed, the other ends, too
+	err = errors.Join(err, <-answered)
+	select {
+	case <-s.draining: // they fell over one another
+		return nil
+	default:
+		return err
+	}
+}
 
 // Shutdown stops the server in order: it tells health checks, takes no more
 // calls, answers what streams have already sent, ends them with UNAVAILABLE,
@@ -91,18 +117,26 @@ func (s *Server) Shutdown(ctx context.Context) error {
 	s.drain.Do(func() { close(s.draining) })
 	done := make(chan struct{})
 	go func() {
+		answered := make(chan struct{})
+		go func() {
+			_ = s.web.Shutdown(ctx) // fails with ctx alone
+			close(answered)
+		}()
 		s.grpc.GracefulStop()
+		<-answered
 		close(done)
 	}()
-	var err error
 	select {
 	case <-done:
 	case <-ctx.Done():
-		err = ctx.Err()
 		// The owners first: a handler may wait for one.
 		s.stopOwners()
 		s.grpc.Stop()
 		<-done
+	}
+	err := ctx.Err()
+	if err != nil {
+		s.web.Close()
 	}
 	s.stopOwners()
 	s.ended.Wait()

@@ -7,6 +7,7 @@ import (
 	"log/slog"
 	"net"
 	"net/http"
+	"sync"
 	"time"
 
 	"connectrpc.com/connect/v2"
@@ -59,6 +60,9 @@ type Server struct {
 	http   *http.Server
 	guard  *guard
 	errors *connecthttp.ErrorWriter
+
+	handling sync.RWMutex // held for reading while a request is answered
+	closed   bool         // guarded by it
 }
 
 var _ grpc.ServiceRegistrar = (*Server)(nil)
@@ -128,6 +132,11 @@ func (s *Server) refuse(w http.ResponseWriter, r *http.Request, why *status.Stat
 
 // ServeHTTP answers one request.
 func (s *Server) ServeHTTP(w http.ResponseWriter, r *http.Request) {
+	s.handling.RLock()
+	defer s.handling.RUnlock()
+	if s.closed {
+		return
+	}
 	limited := s.limit(w, r)
 	defer limited.extend()
 	if err := s.guard.check(r); err != nil {
@@ -153,5 +162,10 @@ func (s *Server) Serve(l net.Listener) error {
 // or until ctx is done.
 func (s *Server) Shutdown(ctx context.Context) error { return s.http.Shutdown(ctx) }
 
-// Close breaks off what is left.
-func (s *Server) Close() { _ = s.http.Close() }
+// Close breaks off the connections that are left and waits for their handlers.
+func (s *Server) Close() {
+	_ = s.http.Close()
+	s.handling.Lock()
+	s.closed = true
+	s.handling.Unlock()
+}
