@@ -16,23 +16,23 @@ import (
 // maxAreaBytes bounds an area's file: wire.MaxPoints points in full digits.
 const maxAreaBytes = 1 << 20
 
-// readArea reads a polygon from a GeoJSON file.
-func readArea(path string) (*leadlinev1.Polygon, error) {
+// readArea reads a polygon from a GeoJSON file that a flag names.
+func readArea(flag, path string) (*leadlinev1.Polygon, error) {
 	if err := exists(path); err != nil {
-		return nil, fmt.Errorf("--area: %w", err)
+		return nil, fmt.Errorf("%s: %w", flag, err)
 	}
 	f, err := os.Open(path)
 	if err != nil {
-		return nil, fmt.Errorf("--area: %w", err)
+		return nil, fmt.Errorf("%s: %w", flag, err)
 	}
 	defer f.Close()
 	text, err := io.ReadAll(io.LimitReader(f, maxAreaBytes+1))
 	if err != nil {
-		return nil, fmt.Errorf("--area: %w", err)
+		return nil, fmt.Errorf("%s: %w", flag, err)
 	}
 	p, err := parseArea(text)
 	if err != nil {
-		return nil, fmt.Errorf("--area %s: %w", path, err)
+		return nil, fmt.Errorf("%s %s: %w", flag, path, err)
 	}
 	return p, nil
 }

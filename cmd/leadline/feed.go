@@ -16,26 +16,44 @@ import (
 
 	"leadline/engine/client"
 	"leadline/engine/drivefile"
+	"leadline/engine/livelog"
+	"leadline/engine/sensor"
 	"leadline/engine/study/replay"
 	"leadline/engine/wire"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
 type feedOptions struct {
-	to, mapName, suite string
-	speed              float64
-	replace            bool
-	asJSON             bool
-	allowRefused       bool
+	headerOptions
+	to           string
+	speed        float64
+	replace      bool
+	asJSON       bool
+	allowRefused bool
+	liveOptions
 }
 
 func feedCommand() *cobra.Command {
 	var o feedOptions
 	c := &cobra.Command{
-		Use:   "feed DRIVE --to ADDR",
-		Short: "Send a recorded drive to a server",
-		Args:  cobra.ExactArgs(1),
-		RunE:  func(c *cobra.Command, args []string) error { return feed(c, &o, args[0]) },
+		Use:   "feed DRIVE|SOURCE --to ADDR",
+		Short: "Send a recorded drive, or instruments as they speak, to a server",
+		Long: `Feed sends a drive file to a server, or NMEA 0183 sentences as they come from a
+source:
+
+  serial:/dev/ttyUSB0?baud=38400   a serial port, 4800 baud unless said
+  tcp:HOST:PORT                    a server of sentences that is connected to
+  udp:HOST:PORT, udp::PORT         datagrams that are listened for
+
+A source that is lost is opened again. SIGINT or SIGTERM ends the feed: what was
+heard is sent, and the drive is ended. A second signal stops at once.`,
+		Args: cobra.ExactArgs(1),
+		RunE: func(c *cobra.Command, args []string) error {
+			if livelog.Is(args[0]) {
+				return o.live(c, args[0])
+			}
+			return feed(c, &o, args[0])
+		},
 	}
 	f := c.Flags()
 	f.StringVar(&o.to, "to", defaultAddress, "address of the server")
@@ -45,12 +63,17 @@ func feedCommand() *cobra.Command {
 	f.BoolVar(&o.replace, "replace", false, "give up another drive that the vehicle has not finished")
 	f.BoolVar(&o.asJSON, "json", false, "print what the server says at the end as JSON")
 	f.BoolVar(&o.allowRefused, "allow-refused", false, "exit with status 0 although measurements were refused")
+	o.headerOptions.flags(c)
+	o.liveOptions.flags(c)
 	return c
 }
 
 func feed(c *cobra.Command, o *feedOptions, path string) error {
 	if !(o.speed >= 0) || math.IsInf(o.speed, 0) {
 		return fmt.Errorf("--speed is %v: give a positive number, or 0 for as fast as possible", o.speed)
+	}
+	if flag := onlyOf(c, liveFlags); flag != "" {
+		return fmt.Errorf("--%s is for instruments: %s is a recorded drive, whose header says it", flag, path)
 	}
 	if err := checkAddress("--to", o.to); err != nil {
 		return err
@@ -72,13 +95,18 @@ func feed(c *cobra.Command, o *feedOptions, path string) error {
 	if err != nil {
 		return fmt.Errorf("%s: %w", path, o.failed(err))
 	}
+	return o.conclude(c, path, driveName(path), closed, refusal)
+}
+
+// conclude prints what the server says at the end, and judges it.
+func (o *feedOptions) conclude(c *cobra.Command, path, name string, closed *leadlinev1.Closed, refusal error) error {
 	if o.asJSON {
 		if err := printMessage(c.OutOrStdout(), closed); err != nil {
 			return err
 		}
 	} else {
 		fmt.Fprintf(c.OutOrStdout(), "%s: %d posteriors from %d measurements, %d refused\nsha256 %s\n",
-			driveName(path), closed.GetPosteriors(), closed.GetAccepted()+closed.GetRefused(), closed.GetRefused(), closed.GetPosteriorSha256())
+			name, closed.GetPosteriors(), closed.GetAccepted()+closed.GetRefused(), closed.GetRefused(), closed.GetPosteriorSha256())
 		printPosterior(c.OutOrStdout(), closed.GetPosterior())
 	}
 	if n := closed.GetRefused(); n > 0 && !o.allowRefused {
@@ -111,7 +139,7 @@ func (o *feedOptions) send(errs io.Writer, d *drivefile.Drive, name string) (*le
 	began := time.Now()
 	for i, ev := range events {
 		if o.speed > 0 {
-			if wait := time.Duration(ev.Time.Seconds(events[0].Time)/o.speed*1e9) - time.Since(began); wait > 0 {
+			if wait := due(events[0].Time, ev.Time, o.speed) - time.Since(began); wait > 0 {
 				if err := f.Flush(); err != nil {
 					f.Abort()
 					return nil, nil, err
@@ -133,6 +161,11 @@ func (o *feedOptions) send(errs io.Writer, d *drivefile.Drive, name string) (*le
 		refusal = refusalError(r)
 	}
 	return closed, refusal, err
+}
+
+// due is how long after the first event of a drive another one is sent.
+func due(first, at sensor.Time, speed float64) time.Duration {
+	return time.Duration(math.Min(at.Seconds(first)/speed*1e9, 1<<62))
 }
 
 // failed words why a feed ended before its drive did.

@@ -118,10 +118,10 @@ func plainPath(err error) error {
 	return err
 }
 
-// needSuffix checks the name of a compiled map.
+// needSuffix checks the name of a file to write.
 func needSuffix(path, suffix string) error {
 	if !strings.HasSuffix(path, suffix) {
-		return fmt.Errorf("-o %s: the name of this kind of map must end in %s", path, suffix)
+		return fmt.Errorf("-o %s: the name of this kind of file must end in %s", path, suffix)
 	}
 	if info, err := os.Stat(filepath.Dir(path)); err != nil || !info.IsDir() {
 		return fmt.Errorf("-o %s: there is no folder %s: make it first", path, filepath.Dir(path))

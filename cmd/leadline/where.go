@@ -52,7 +52,7 @@ func where(c *cobra.Command, o *whereOptions, vehicle string) error {
 	}
 	if o.area != "" {
 		var err error
-		if req.Area, err = readArea(o.area); err != nil {
+		if req.Area, err = readArea("--area", o.area); err != nil {
 			return err
 		}
 	}

@@ -52,6 +52,9 @@ type Drive struct {
 	// and send the same measurements from the start with the same Batch: what
 	// the server has is not sent twice.
 	Name string
+	// Continue says that what is sent goes on after what the server has, in
+	// place of sending that again.
+	Continue bool
 	// Replace gives up another drive that the vehicle has not finished.
 	Replace bool
 	// Batch is the number of measurements sent together, at most what the
@@ -112,6 +115,9 @@ func Open(ctx context.Context, conn grpc.ClientConnInterface, d Drive) (*Feed, e
 		most:   int(opened.GetMaxMessageBytes()) - overhead,
 		window: make(chan struct{}, d.Window), done: make(chan struct{}),
 	}
+	if d.Continue {
+		f.sent = f.have
+	}
 	go f.receive()
 	return f, nil
 }
@@ -133,6 +139,9 @@ func open(ctx context.Context, conn grpc.ClientConnInterface, d Drive) (*leadlin
 	}
 	return m.GetOpened(), stream, nil
 }
+
+// Name returns the drive's name.
+func (f *Feed) Name() string { return f.drive.Name }
 
 // Send sends a measurement, with its batch once that is full, and waits while
 // Window batches have no receipt. It keeps m. An error ends the feed.

@@ -76,3 +76,43 @@ func TestLeaveTooLate(t *testing.T) {
 		t.Error("no error")
 	}
 }
+
+// TestContinue proves that a drive that goes on counts its batches from where
+// the server is, and sends each of them.
+func TestContinue(t *testing.T) {
+	conn := against(t, func(st serverStream) error {
+		if _, err := st.Recv(); err != nil {
+			return err
+		}
+		if err := st.Send(opened(7, 10, 1000)); err != nil {
+			return err
+		}
+		m, err := st.Recv()
+		if err != nil {
+			return err
+		}
+		if seq := m.GetBatch().GetSequence(); seq != 8 || len(m.GetBatch().GetMeasurements()) != 1 {
+			return status.Errorf(codes.InvalidArgument, "batch %d", seq)
+		}
+		if err := st.Send(receipt(8)); err != nil {
+			return err
+		}
+		if m, err = st.Recv(); err != nil || m.GetEnd() == nil {
+			return errors.New("no end")
+		}
+		return st.Send(closing)
+	})
+	f, err := Open(limited(t), conn, Drive{Name: "watch", Continue: true})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if f.Name() != "watch" {
+		t.Errorf("its name is %q", f.Name())
+	}
+	if err := f.Send(measurement(1)); err != nil {
+		t.Fatal(err)
+	}
+	if _, err := f.Close(); err != nil {
+		t.Error(err)
+	}
+}

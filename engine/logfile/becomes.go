@@ -37,7 +37,11 @@ func (n *NMEA) record(r *reading) error {
 		kind, since = sensor.KindTurn, last.at
 		dpm := 0.5 * (last.dpm + r.v)
 		c.num["angle_deg"] = dpm / 60 * dt
-		c.num["sigma_deg"] = n.o.sigma(turnRate, turnRateSigmaDPM(dpm)/60) * math.Sqrt(dt*math.Max(dt, 1))
+		if sigma := n.o.sigma(turnRate, turnRateSigmaDPM(dpm)/60); sigma != 0 {
+			// Between the two the rate is anywhere between the two.
+			between := (r.v - last.dpm) / 60 * dt / math.Sqrt(12)
+			c.num["sigma_deg"] = math.Sqrt(sigma*sigma*dt*math.Max(dt, 1) + between*between)
+		}
 	case waterSpeed, groundSpeed:
 		if n.o.Reckon != nil && r.body {
 			return n.reckon(r)

@@ -18,11 +18,15 @@
 //	quantity      sentences           becomes               default sigma
 //	depth         DPT DBT             sounding "sounder"    S-44 order 1a: √(0.5² + (0.013 d)²) / 1.96 m
 //	heading       HDT HDG HDM VHW     heading "compass"     1° if measured true, 3° if magnetic; practice
-//	turn_rate     ROT                 turn "turn_rate"      half of 0.5 °/min and 5 % of the rate, times √(dt·max(dt, 1 s)) (IMO A.526, from memory)
+//	turn_rate     ROT                 turn "turn_rate"      half of 0.5 °/min and 5 % of the rate (IMO A.526, from memory)
 //	water_speed   VBW VHW             speed "water_speed"   0.3 m/s, a weak current included; practice
 //	ground_speed  VBW VTG RMC         speed "ground_speed"  0.1 m/s, with its course from VTG and RMC; practice
 //	fix           GGA RMC GLL         fix "fix"             an axis: 4 m × HDOP, differential 1 m × HDOP, float 0.5 m, fixed 0.05 m; HDOP 2 unless told; practice
 //	(time)        ZDA RMC GGA GLL     the time of all others
+//
+// ROT: the turn between two rates is their mean times the time dt between them,
+// at most ten seconds; its variance is σ²·dt·max(dt, 1 s), and (Δ·dt)²/12 for
+// rates that differ by Δ, since the rate was anywhere between them.
 //
 // DPT: an offset above 0 is the transducer's depth below the waterline; one
 // below 0 is measured to the keel and says nothing of the waterline. VBW: the

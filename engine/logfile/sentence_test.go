@@ -178,11 +178,12 @@ func TestRateOfTurn(t *testing.T) {
 	g := readNMEA(t, log(
 		clock(0), "TIROT,60.0,A", clock(1), "TIROT,120.0,A", clock(3), "TIROT,-60.0,A",
 		clock(14), "TIROT,6,A", clock(15), "TIROT,6,V", clock(16), "TIROT,12,A"), "")
-	// σ = (0.5 + 0.05·rate)/2 °/min · √(dt·max(dt, 1 s))
+	// σ² = ((0.5 + 0.05·rate)/2 °/min)²·dt·max(dt, 1 s) + (Δ·dt)²/12:
+	// 0.041667² + 1²/12, 0.033333² + 6²/12, 0.015833² + 0.2²/12
 	g.want(t,
-		"12:00:01 turn_rate turn 1s 1.5 ±0.0416667",
-		"12:00:03 turn_rate turn 2s 1 ±0.0333333",
-		"12:00:16 turn_rate turn 2s 0.3 ±0.0158333")
+		"12:00:01 turn_rate turn 1s 1.5 ±0.291667",
+		"12:00:03 turn_rate turn 2s 1 ±1.73237",
+		"12:00:16 turn_rate turn 2s 0.3 ±0.0598668")
 	g.passed(t, map[string]int{"ROT: the first of a turn": 2, "ROT without a value": 1})
 	g = readNMEA(t, log(clock(0), "TIROT,60.0,A", clock(0.5), "TIROT,60.0,A"), "turn_rate: {sigma_dps: 0.2}")
 	// 0.2 · √(0.5·1)
