@@ -127,7 +127,7 @@ func (o *importOptions) reader(path string) (readLog, error) {
 		if flag != "" {
 			return nil, fmt.Errorf("--columns is for tables and %s for NMEA sentences: give one of them", flag)
 		}
-		text, err := readSettings("--columns", o.columns)
+		text, err := readYAML("--columns", o.columns)
 		if err != nil {
 			return nil, err
 		}

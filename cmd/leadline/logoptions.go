@@ -108,7 +108,7 @@ func (o *sentenceOptions) given() string {
 func (o *sentenceOptions) sentences() (*logfile.Sentences, error) {
 	s := &logfile.Sentences{}
 	if o.file != "" {
-		text, err := readSettings("--sentences", o.file)
+		text, err := readYAML("--sentences", o.file)
 		if err != nil {
 			return nil, err
 		}
@@ -132,8 +132,8 @@ func (o *sentenceOptions) sentences() (*logfile.Sentences, error) {
 	return s, s.Validate()
 }
 
-// readSettings reads a YAML file that a flag names.
-func readSettings(flag, path string) ([]byte, error) {
+// readYAML reads a file that a flag names.
+func readYAML(flag, path string) ([]byte, error) {
 	info, err := os.Stat(path)
 	switch {
 	case os.IsNotExist(err):
