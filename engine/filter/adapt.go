@@ -18,7 +18,12 @@ func (b *Belief) ScaleM() float64 { return b.Lattice.SpacingM * b.Tiles.scale() 
 
 // scale is ScaleM in cells. The masses must sum to 1.
 func (t *Tiles) scale() float64 {
-	var je, jn float64
+	je, jn := t.roughness()
+	return 1 / (2 * math.Sqrt(math.Max(je, jn)))
+}
+
+// roughness returns Σ (√p(i+1) - √p(i))² along either axis.
+func (t *Tiles) roughness() (je, jn float64) {
 	for i, at := range t.At {
 		tile := t.tile(i)
 		var east, north []float64
@@ -48,7 +53,7 @@ func (t *Tiles) scale() float64 {
 			}
 		}
 	}
-	return 1 / (2 * math.Sqrt(math.Max(je, jn)))
+	return je, jn
 }
 
 // Spacing is at most fineScale of the belief's scale where the budget allows;
@@ -59,12 +64,16 @@ const (
 	coarseScale = 0.3
 )
 
-// Adapt halves or doubles the spacing of a lattice belief so that it follows
-// the belief's own width, within a budget of cells, keeping mass and mean;
-// the variance that a change of spacing adds is kept as the tiles' surplus
-// and taken back from the next spread. It does nothing to beliefs with
-// quantities. It reports whether anything changed.
+// Adapt halves or doubles the spacing of a belief on a plane so that it
+// follows the belief's own width, within a budget of cells or Gaussians,
+// keeping mass and mean. Gaussians keep the variance as well; what a change of
+// spacing adds to that of a lattice is kept as the tiles' surplus and taken
+// back from the next spread. It does nothing to beliefs on lines. It reports
+// whether anything changed. A trace does not follow it.
 func Adapt(b *Belief, maxCells int, w *Workspace) bool {
+	if b.Dim == 2 && len(b.Quantities) > 0 && len(b.Key) > 0 {
+		return b.adaptGaussians(maxCells, w)
+	}
 	if len(b.Quantities) > 0 || len(b.Tiles.At) == 0 {
 		return false
 	}
@@ -245,10 +254,6 @@ func (b *Belief) swap(ts *tileSpace, l Lattice, before latticeMoments) {
 // cover sets ts.spare to empty tiles over the cells that span gives for each
 // tile, and ts.index to them.
 func (ts *tileSpace) cover(tiles []TileAt, span func(TileAt) (lo, hi TileAt)) {
-	if ts.index == nil {
-		ts.index = map[TileAt]int32{}
-	}
-	clear(ts.index)
 	at := ts.spare.At[:0]
 	for _, t := range tiles {
 		lo, hi := span(t)
@@ -258,8 +263,17 @@ func (ts *tileSpace) cover(tiles []TileAt, span func(TileAt) (lo, hi TileAt)) {
 			}
 		}
 	}
-	ts.spare.At = sortedTiles(at)
-	for i, t := range ts.spare.At {
+	ts.empty(sortedTiles(at))
+}
+
+// empty sets ts.spare to empty tiles and ts.index to them.
+func (ts *tileSpace) empty(at []TileAt) {
+	if ts.index == nil {
+		ts.index = map[TileAt]int32{}
+	}
+	clear(ts.index)
+	ts.spare.At = at
+	for i, t := range at {
 		ts.index[t] = int32(i)
 	}
 	ts.spare.Mass = resize(ts.spare.Mass, len(ts.spare.At)*tileCells)

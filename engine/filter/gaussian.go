@@ -190,6 +190,19 @@ func (g *gaussian) truncate(k, d int, c cut) gaussian {
 	return r
 }
 
+// shrink multiplies the standard deviation of quantity d by f and leaves the
+// correlations.
+func (g *gaussian) shrink(k, d int, f float64) {
+	for i := range k {
+		if i < d {
+			g.cov[Packed(d, i)] *= f
+		} else {
+			g.cov[Packed(i, d)] *= f
+		}
+	}
+	g.cov[Packed(d, d)] *= f
+}
+
 // absorb merges h into g by moments: mass, mean and covariance of the sum are
 // kept. Angular quantities are averaged along the shorter arc.
 func (g *gaussian) absorb(k int, h *gaussian, angular uint) {

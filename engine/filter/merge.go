@@ -1,8 +1,10 @@
 package filter
 
 import (
+	"cmp"
 	"math"
 	"math/bits"
+	"slices"
 
 	"leadline/engine/geo"
 )
@@ -50,11 +52,7 @@ func (m *merger) merge(dst, src *Gaussians, k int, angular uint, most int, trace
 		cell := m.order[a:b]
 		a = b
 		// Heavy ones first, so that they, not crumbs, found the groups.
-		for i := 1; i < len(cell); i++ {
-			for j := i; j > 0 && src.Mass[cell[j]] > src.Mass[cell[j-1]]; j-- {
-				cell[j], cell[j-1] = cell[j-1], cell[j]
-			}
-		}
+		slices.SortStableFunc(cell, func(i, j int32) int { return cmp.Compare(src.Mass[j], src.Mass[i]) })
 		used := 0
 		member = member[:0]
 		for _, i := range cell {

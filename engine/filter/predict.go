@@ -10,10 +10,6 @@ import (
 // it costs below 1e-6 of the mass.
 const Floor = 1e-12
 
-// foldSigmas is where splitting a wide Gaussian stops: what lies beyond goes
-// into the outermost piece, so that mass, mean and variance stay exact.
-const foldSigmas = 3.5
-
 // Workspace is the memory of Predict and Update, kept between steps. The zero
 // value is ready; one goroutine owns it.
 type Workspace struct {
@@ -53,8 +49,11 @@ func (w *Workspace) Record(t *Trace) { w.trace = t }
 // then decides in which cell it is at home. Only when its position is wider
 // than half a cell is it cut at the cell edges, each piece with the mass,
 // mean and covariance of the truncated Gaussian, so that mass, mean and
-// variance of the whole are kept. Gaussians that meet in a cell merge by
-// moments. On a plane without quantities the lattice's origin takes the
+// variance of the whole are kept. On a plane a Gaussian whose heading is wide
+// is cut into sectors likewise, and one of little mass beside the others is
+// not cut at all; wide noise is taken axis by axis, on a lattice that it leaves
+// fine enough. Gaussians that meet in a cell merge by moments. On a plane
+// without quantities the lattice's origin takes the
 // displacement and the masses spread by kernels of exactly the variance asked
 // for. The cost is linear in the occupied cells.
 //
@@ -76,13 +75,31 @@ func Predict(b *Belief, space Space, step Step, w *Workspace) {
 		b.predictTiles(step, w)
 		return
 	}
+	if b.Dim == 1 || w.trace != nil {
+		b.move(space, step, w)
+		return
+	}
+	if v := narrow(step.Q); v > square(b.Lattice.SpacingM) {
+		b.makeRoom(v, w)
+	}
+	step, noise := b.apart(step)
+	b.move(space, step, w)
+	for _, step := range noise {
+		b.move(space, step, w)
+	}
+}
+
+// move is Predict for Gaussians.
+func (b *Belief) move(space Space, step Step, w *Workspace) {
+	k := len(b.Quantities)
 	mv := mover{k: k, dim: b.Dim, step: step, out: &w.out, angular: angularMask(b.Quantities)}
-	mv.out.reset()
-	w.source = w.source[:0]
 	if b.Dim == 1 {
 		mv.lines = space.(LineSpace).Lines(b.Level)
 	} else {
 		mv.lattice = b.Lattice
+		var most float64
+		w.tiles.density, most = b.densities(w.tiles.density, b.Mass, k, b.Lattice.SpacingM)
+		mv.faint = cutShare * most
 	}
 	if step.Local != nil {
 		w.locate(b, space, step.Local.Wants())
@@ -99,6 +116,47 @@ func Predict(b *Belief, space Space, step Step, w *Workspace) {
 			copy(mv.stepF, step.F)
 		}
 	}
+	if b.Dim == 2 {
+		// What the noise alone would be cut into, without trying.
+		for float64(len(b.Key))*pieces(step.Q[0], mv.lattice)*pieces(step.Q[2], mv.lattice) > maxPieces {
+			mv.lattice = mv.lattice.coarser()
+		}
+	}
+	for !mv.send(b, w) {
+		mv.lattice = mv.lattice.coarser()
+	}
+	b.Lattice = mv.lattice
+	b.Pruned += mv.pruned
+	b.LeftMap += mv.left
+	var into []int32
+	if w.trace != nil {
+		w.into = resize(w.into, len(w.source))
+		into = w.into
+		w.trace.fill(b, &w.out, w.source)
+	}
+	w.merger.merge(&b.Gaussians, &w.out, k, mv.angular, perCell(b.Dim), into)
+	if w.trace != nil {
+		w.trace.Target = append(w.trace.Target[:0], into...)
+		w.trace.Predicted = len(b.Key)
+		w.trace.Kept = w.trace.Kept[:0]
+		for i := range b.Key {
+			w.trace.Kept = append(w.trace.Kept, int32(i))
+		}
+	}
+}
+
+// maxPieces is how many pieces one step may cut a belief on a plane into, over
+// the Gaussians that it has. A step so wide that it would be more is cut on a
+// coarser lattice; no moment changes.
+const maxPieces = 1 << 19
+
+// send moves every Gaussian and sends it to its cells. It reports false if
+// that makes too many pieces.
+func (mv *mover) send(b *Belief, w *Workspace) bool {
+	step, k := &mv.step, mv.k
+	mv.out.reset()
+	w.source = w.source[:0]
+	mv.pruned, mv.left, mv.cuts = 0, 0, 0
 	only := -1
 	if step.Local == nil && step.F != nil {
 		only = onlyRow(k, step.F)
@@ -117,30 +175,16 @@ func Predict(b *Belief, space Space, step Step, w *Workspace) {
 			chart, cell := LineCell(b.Key[i])
 			mv.line(chart, cell, &g)
 		} else {
-			col, row := Cell(b.Key[i])
-			mv.plane(col, row, &g)
+			mv.plane(b.Lattice, b.Key[i], &g, w.tiles.density[i] < mv.faint)
+			if mv.cuts > maxPieces {
+				return false
+			}
 		}
 		for len(w.source) < len(mv.out.Key) {
 			w.source = append(w.source, int32(i))
 		}
 	}
-	b.Pruned += mv.pruned
-	b.LeftMap += mv.left
-	var into []int32
-	if w.trace != nil {
-		w.into = resize(w.into, len(w.source))
-		into = w.into
-		w.trace.fill(b, &w.out, w.source)
-	}
-	w.merger.merge(&b.Gaussians, &w.out, k, mv.angular, perCell(b.Dim), into)
-	if w.trace != nil {
-		w.trace.Target = append(w.trace.Target[:0], into...)
-		w.trace.Predicted = len(b.Key)
-		w.trace.Kept = w.trace.Kept[:0]
-		for i := range b.Key {
-			w.trace.Kept = append(w.trace.Kept, int32(i))
-		}
-	}
+	return true
 }
 
 func (t *Trace) fill(b *Belief, out *Gaussians, source []int32) {
@@ -167,121 +211,11 @@ type mover struct {
 	angular      uint
 	lines        *Lines
 	lattice      Lattice
+	faint        float64 // the density below which a Gaussian on a plane is not cut
+	cuts         int     // pieces made on a plane, less the Gaussians cut
 	out          *Gaussians
+	taps         [MaxK][]float64 // of each quantity, since cuts nest
 	pruned, left float64
-}
-
-// line sends a Gaussian whose position is relative to the centre of a cell of
-// a chart.
-func (mv *mover) line(chart, cell int32, g *gaussian) {
-	h := mv.lines.WidthM[chart]
-	pos := float64((float64(cell)+0.5)*h) + g.mean[0]
-	sigma := math.Sqrt(g.cov[0])
-	if sigma <= 0.5*h {
-		mv.place(chart, pos, g, g.mass, 0)
-		return
-	}
-	first := math.Floor((pos - foldSigmas*sigma) / h)
-	last := math.Floor((pos + foldSigmas*sigma) / h)
-	left := edge{z: math.Inf(-1)}
-	for j := first; j <= last; j++ {
-		right := edge{z: math.Inf(1)}
-		if j < last {
-			right = edgeAt((float64((j+1)*h) - pos) / sigma)
-		}
-		if c := between(left, right); c.share > 0 {
-			piece := g.truncate(mv.k, 0, c)
-			// A folded tail may have its mean beyond its cell: it is at home
-			// where its mean is.
-			mv.place(chart, pos+float64(sigma*c.mean), &piece, piece.mass, 0)
-		}
-		left = right
-	}
-}
-
-// placeDepth bounds how many short edges one step may cross.
-const placeDepth = 64
-
-// place puts a Gaussian with the given mass at a position along a chart, or
-// beyond its ends. It uses g's own mass and position as scratch.
-func (mv *mover) place(chart int32, pos float64, g *gaussian, mass float64, depth int) {
-	ln := mv.lines
-	length := ln.LengthM[chart]
-	if pos >= 0 && pos < length || depth == placeDepth {
-		if mass < Floor {
-			mv.pruned += mass
-			return
-		}
-		cell := int32(math.Min(math.Max(pos/ln.WidthM[chart], 0), float64(ln.Cells[chart]-1)))
-		g.mass = mass
-		g.mean[0] = pos - float64((float64(cell)+0.5)*ln.WidthM[chart])
-		mv.out.push(LineKey(chart, cell), mv.k, g)
-		return
-	}
-	links, beyond := &ln.Forward, pos-length
-	if pos < 0 {
-		links, beyond = &ln.Backward, pos
-	}
-	to, weight := links.Of(chart)
-	if len(to) == 0 {
-		mv.left += mass
-		return
-	}
-	if mass < Floor {
-		mv.pruned += mass
-		return
-	}
-	for i, next := range to {
-		p := beyond
-		if pos < 0 {
-			p += ln.LengthM[next]
-		}
-		mv.place(next, p, g, float64(mass*weight[i]), depth+1)
-	}
-}
-
-// plane sends a Gaussian whose position is relative to the centre of a
-// lattice cell: across columns first, then each piece across rows.
-func (mv *mover) plane(col, row int32, g *gaussian) {
-	mv.split(0, col, g, func(col int32, g *gaussian) {
-		mv.split(1, row, g, func(row int32, g *gaussian) {
-			if g.mass < Floor {
-				mv.pruned += g.mass
-				return
-			}
-			mv.out.push(CellKey(col, row), mv.k, g)
-		})
-	})
-}
-
-// split cuts a Gaussian at the cell edges of axis d if it is wide there.
-func (mv *mover) split(d int, cell int32, g *gaussian, emit func(int32, *gaussian)) {
-	h := mv.lattice.SpacingM
-	sigma := math.Sqrt(g.cov[Packed(d, d)])
-	home := func(r *gaussian) {
-		n := math.Floor(r.mean[d]/h + 0.5)
-		r.mean[d] -= float64(n * h)
-		emit(cell+int32(n), r)
-	}
-	if sigma <= 0.5*h {
-		r := *g
-		home(&r)
-		return
-	}
-	first := math.Floor((g.mean[d]-foldSigmas*sigma)/h + 0.5)
-	last := math.Floor((g.mean[d]+foldSigmas*sigma)/h + 0.5)
-	left := edge{z: math.Inf(-1)}
-	for j := first; j <= last; j++ {
-		right := edge{z: math.Inf(1)}
-		if j < last {
-			right = edgeAt((float64((j+0.5)*h) - g.mean[d]) / sigma)
-		}
-		if c := between(left, right); c.share > 0 {
-			piece := g.truncate(mv.k, d, c)
-			home(&piece)
-		}
-		left = right
-	}
 }
 
 // locate fills w.at with the columns at the Gaussians' positions.

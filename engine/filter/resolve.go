@@ -10,24 +10,30 @@ import (
 // lattice: a factor of 1024.
 const maxRefinements = 10
 
-// UpdateWithin is Update for a belief that the measurement may make much
-// sharper than it was: where the belief is a lattice, its spacing is first
-// halved until it is at most 0.4 of the scale of the posterior, within a
-// budget of cells. Cells to which the measurement leaves nothing are dropped
-// before, so that a sharp posterior does not pay for a wide prior. Other
-// beliefs it updates as Update does.
+// UpdateWithin is Update for a belief on a plane that the measurement may make
+// much sharper than it was: its spacing is first halved until it resolves the
+// posterior as Adapt would have it, within a budget of cells or Gaussians.
+// A sharp posterior does not pay for a wide prior: cells of a lattice to which
+// the measurement leaves nothing are dropped before, and of the Gaussians only
+// those are cut that it does not leave faint. A belief on lines, and one that
+// is traced, it updates as Update does.
 //
-// Without it, a measurement with a sigma well below the spacing leaves a
-// posterior as wide as a cell, wherever in the cell the truth is.
+// Without it, a measurement with a sigma well below the spacing of a lattice
+// leaves a posterior as wide as a cell, wherever in the cell the truth is; and
+// a Gaussian as wide as a cell is updated by a measurement that is not linear
+// over it, or that may be an outlier, as if it were one place.
 func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (logEvidence float64, err error) {
-	if len(b.Quantities) > 0 || b.Map != space.Fingerprint() {
+	if b.Dim == 1 || b.Map != space.Fingerprint() || w.trace != nil {
 		return Update(b, space, l, w)
+	}
+	if len(b.Quantities) > 0 {
+		return b.updateGaussians(space, l, maxCells, w)
 	}
 	plane := space.(PlaneSpace)
 	b.logTiles(plane, l, w)
 	var before *Belief
 	for range maxRefinements {
-		cells, ok := b.outcome(w)
+		cells, ok := w.outcome(b.Tiles.Mass, cellFloor)
 		// scratch holds the posterior's masses, whose scale is asked for.
 		t := Tiles{At: b.Tiles.At, Mass: w.scratch}
 		if !ok || 4*cells > maxCells || t.scale() >= 1/fineScale {
@@ -54,7 +60,7 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 	if before == nil {
 		return b.weighTiles(w)
 	}
-	share := b.Tiles.mass() / before.Tiles.mass()
+	share := sum(b.Tiles.Mass) / sum(before.Tiles.Mass)
 	logEvidence, err = b.weighTiles(w)
 	if err != nil {
 		*b = *before
@@ -63,11 +69,61 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 	return logEvidence + kernel.Log(share), nil
 }
 
+// updateGaussians is UpdateWithin for Gaussians.
+func (b *Belief) updateGaussians(space Space, l any, maxCells int, w *Workspace) (float64, error) {
+	k := len(b.Quantities)
+	_, linear := l.(LinearLikelihood)
+	var before *Belief
+	b.condition(space, l, w)
+	for range maxRefinements {
+		if _, ok := w.outcome(b.Mass, Floor); !ok {
+			break
+		}
+		after := &b.Gaussians
+		if linear {
+			after = &w.out
+		}
+		h := b.Lattice.SpacingM
+		width, dense := w.tiles.width(after, w.scratch, k, h)
+		if h <= fineGaussians*width || h < 2*minSpacingM || len(b.Key)+3*dense > maxCells || !b.wide(cutWidth*h/2, w) {
+			break
+		}
+		if before == nil {
+			before = b.Clone()
+		}
+
+		b.regrid(b.Lattice.finer(), w.scratch, w)
+		b.condition(space, l, w)
+		if b.Lattice.SpacingM == h {
+			break
+		}
+	}
+	logEvidence, err := b.settle(l, w)
+	if err != nil && before != nil {
+		*b = *before
+	}
+	return logEvidence, err
+}
+
+// wide reports whether a Gaussian that is not faint in w.scratch is wider than
+// sigma along an axis.
+func (b *Belief) wide(sigma float64, w *Workspace) bool {
+	k := len(b.Quantities)
+	p := k * (k + 1) / 2
+	var most float64
+	w.tiles.density, most = b.densities(w.tiles.density, w.scratch, k, b.Lattice.SpacingM)
+	for i, d := range w.tiles.density {
+		if d >= cutShare*most && math.Max(b.Cov[i*p], b.Cov[i*p+2]) > sigma*sigma {
+			return true
+		}
+	}
+	return false
+}
+
 // outcome writes the masses that w.logs would leave, normalised, into
-// w.scratch and returns how many are worth keeping; false if none is, or if a
+// w.scratch and returns how many are at least floor; false if none is, or if a
 // log is not one.
-func (b *Belief) outcome(w *Workspace) (cells int, ok bool) {
-	mass := b.Tiles.Mass
+func (w *Workspace) outcome(mass []float64, floor float64) (n int, ok bool) {
 	most := math.Inf(-1)
 	for i, l := range w.logs {
 		if mass[i] > 0 {
@@ -88,18 +144,11 @@ func (b *Belief) outcome(w *Workspace) (cells int, ok bool) {
 	}
 	for i := range w.scratch {
 		w.scratch[i] /= sum
-		if w.scratch[i] >= cellFloor {
-			cells++
+		if w.scratch[i] >= floor {
+			n++
 		}
 	}
-	return cells, sum > 0
-}
-
-func (t *Tiles) mass() (sum float64) {
-	for _, v := range t.Mass {
-		sum += v
-	}
-	return sum
+	return n, sum > 0
 }
 
 // contract returns what is left of a lattice's surplus of variance after a

@@ -177,12 +177,17 @@ func (b *Belief) seedPlane(s PlaneSpace, prior Prior, maxCells int) error {
 	}
 	h := s.DetailM()
 	if p, ok := prior.(AtPoint); ok {
-		h = math.Min(h, fineScale*p.SigmaM)
+		fine := fineScale
+		if len(b.Quantities) > 0 {
+			fine = coarseGaussians
+		}
+		h = math.Min(h, fine*p.SigmaM)
 	}
 	if !(h > 0) {
 		return fmt.Errorf("filter: no lattice with a spacing of %v m", h)
 	}
-	for (box.Max.E-box.Min.E)/h*((box.Max.N-box.Min.N)/h) > float64(maxCells) {
+	parts := float64(b.headingParts())
+	for (box.Max.E-box.Min.E)/h*((box.Max.N-box.Min.N)/h)*parts > float64(maxCells) {
 		h *= 2
 	}
 	b.Lattice = Lattice{geo.Point{E: (box.Min.E + box.Max.E) / 2, N: (box.Min.N + box.Max.N) / 2}, h}
@@ -219,19 +224,29 @@ func (b *Belief) seedPlane(s PlaneSpace, prior Prior, maxCells int) error {
 	return b.normalise(total)
 }
 
-// headingParts is how many Gaussians a cell starts with where the heading is
-// unknown: 22.5° apart, each as wide as their distance.
-const headingParts = 16
+// headingParts is how many Gaussians a cell starts with.
+func (b *Belief) headingParts() int {
+	if i := Index(b.Quantities, Heading); i >= 0 && b.Quantities[i].PriorVar > float64(math.Pi*math.Pi/9) {
+		return headingParts // wider than ±60°: nothing is known of it
+	}
+	return 1
+}
 
+// seedCells puts Gaussians into the cells of a rectangle. Their own width comes
+// off a point's prior; an area is blurred by it.
 func (b *Belief) seedCells(s PlaneSpace, prior Prior, col0, col1, row0, row1 int32) error {
 	h := b.Lattice.SpacingM
+	if p, ok := prior.(AtPoint); ok {
+		// What a cell holds is read as a mass at its mean: between the means lies
+		// h²/12 less than the prior's variance.
+		if v := p.SigmaM*p.SigmaM - (pieceWidth*pieceWidth-1.0/12)*h*h; v > 0.5*p.SigmaM*p.SigmaM {
+			prior = AtPoint{p.Point, math.Sqrt(v)}
+		}
+	}
 	bounds := s.Bounds()
 	k := len(b.Quantities)
 	heading := Index(b.Quantities, Heading)
-	parts := 1
-	if heading >= 0 && b.Quantities[heading].PriorVar > float64(math.Pi*math.Pi/9) {
-		parts = headingParts // wider than ±60°: nothing is known of it
-	}
+	parts := b.headingParts()
 	var at Columns
 	at.Resize(WantPosition, 2, subPoints*subPoints)
 	density := make([]float64, subPoints*subPoints)
@@ -256,6 +271,9 @@ func (b *Belief) seedCells(s PlaneSpace, prior Prior, col0, col1, row0, row1 int
 					g.absorbFirst(k, &piece, 0)
 				}
 			}
+			// As wide as the pieces of what is cut, so that the density is smooth.
+			own := square(pieceWidth * h)
+			g.cov[0], g.cov[1], g.cov[2] = own, 0, own
 			if g.mass == 0 {
 				continue
 			}
@@ -264,9 +282,8 @@ func (b *Belief) seedCells(s PlaneSpace, prior Prior, col0, col1, row0, row1 int
 				p := g
 				if parts > 1 {
 					p.mass /= float64(parts)
-					step := 2 * math.Pi / float64(parts)
-					p.mean[heading] = geo.WrapPi(step * float64(i))
-					p.cov[Packed(heading, heading)] = step * step / 4
+					p.mean[heading] = geo.WrapPi(sectorRad * float64(i))
+					p.cov[Packed(heading, heading)] = square(pieceWidth * sectorRad)
 				}
 				b.push(CellKey(col, row), k, &p)
 			}

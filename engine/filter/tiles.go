@@ -18,6 +18,8 @@ type tileSpace struct {
 	spare Tiles
 	index map[TileAt]int32
 	taps  taps
+	// density is of Gaussians, see width.
+	density []float64
 }
 
 // tile returns the masses of tile i.

@@ -27,6 +27,14 @@ func Update(b *Belief, space Space, l any, w *Workspace) (logEvidence float64, e
 	if len(b.Quantities) == 0 {
 		return b.updateTiles(space.(PlaneSpace), l, w)
 	}
+	b.condition(space, l, w)
+	return b.settle(l, w)
+}
+
+// condition writes the log likelihood of every Gaussian into w.logs and, of a
+// linear likelihood, the Gaussians after it into w.out, entry by entry. The
+// belief stays as it is, so that a contradiction leaves it alone.
+func (b *Belief) condition(space Space, l any, w *Workspace) {
 	n := len(b.Key)
 	w.logs = resize(w.logs, n)
 	clear(w.logs)
@@ -40,8 +48,6 @@ func Update(b *Belief, space Space, l any, w *Workspace) (logEvidence float64, e
 		noise := l.Noise()
 		nw := newNoiseWork(&noise, m)
 		angular := angularMask(b.Quantities)
-		// The posterior Gaussians go to the side, so that a contradiction
-		// leaves the belief alone.
 		w.out.reset()
 		var g gaussian
 		for i := range n {
@@ -55,7 +61,12 @@ func Update(b *Belief, space Space, l any, w *Workspace) (logEvidence float64, e
 	default:
 		panic("filter: not a likelihood")
 	}
-	logEvidence, err = weigh(b.Mass, w.logs)
+}
+
+// settle weighs the belief by what condition found and returns the log
+// evidence.
+func (b *Belief) settle(l any, w *Workspace) (float64, error) {
+	logEvidence, err := weigh(b.Mass, w.logs)
 	if err != nil {
 		return logEvidence, err
 	}

@@ -210,7 +210,12 @@ const refineShare = 8
 func (s *Session) adapt() {
 	b := s.state.belief
 	if s.lines == nil {
-		filter.Adapt(b, s.maxCells, &s.work)
+		for range maxAdaptations {
+			// A lattice is changed by one halving or doubling a time.
+			if !filter.Adapt(b, s.maxCells, &s.work) || len(b.Quantities) == 0 {
+				break
+			}
+		}
 		return
 	}
 	n := b.Cells()

@@ -205,3 +205,38 @@ func ouUnknown(w, tau, s float64) float64 {
 	x := s / tau
 	return 2 * w * tau * tau * (x - 1 + math.Exp(-x))
 }
+
+// TestSilenceOnAPlane: a vehicle that needs its heading on a plane is fixed, then
+// silent for 16 s, then fixed again. The belief spreads as the prior says and
+// the cells grow and shrink with it: with cells that stayed as they were it took
+// minutes and hundreds of thousands of Gaussians.
+func TestSilenceOnAPlane(t *testing.T) {
+	suite, err := sensor.ParseSuite("craft", []byte("sensors:\n- {name: odo, kind: travel}\n- {name: gyro, kind: turn}\n"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	water := sea()
+	c := Config{Space: water, Suite: suite, Start: pointStart(water, geo.Point{}, 10)}
+	s := open(t, c)
+	fix := func(at sensor.Time, n uint64) sensor.Event {
+		return sensor.Event{Time: at, Sensor: "gps", Number: n, Measurement: sensor.Fix{Position: c.Start.Point, SigmaM: 5}}
+	}
+	o := feed(t, s, []sensor.Event{fix(at(0), 0)})
+	before := o.posteriors[0].CovFrame
+	for i, x := range []float64{4, 16} {
+		feed(t, s, []sensor.Event{everywhere(water.Frame(), x, i)})
+		p := s.Latest()
+		want := before.EE + ouUnknown(400, gapTau, x)
+		if math.Abs(p.CovFrame.EE/want-1) > 0.01 || math.Abs(p.CovFrame.NN/want-1) > 0.01 {
+			t.Errorf("after %g s a covariance of %+v, want %g", x, p.CovFrame, want)
+		}
+		if n, h := s.Size(), s.CellM()/math.Sqrt(want); n > 15_000 || h < 0.2 || h > 0.9 {
+			t.Errorf("after %g s: %d Gaussians in cells of %.2f sigma", x, n, h)
+		}
+	}
+	feed(t, s, []sensor.Event{fix(at(16.1), 1)})
+	// The fix leaves 25 m² and, as an outlier, 9e-5 of what was.
+	if p := s.Latest(); p.CovFrame.EE < 24 || p.CovFrame.EE > 36 || s.CellM() > 4.5 || s.Size() > 25_000 {
+		t.Errorf("after a fix a covariance of %+v, %d Gaussians in cells of %g m", p.CovFrame, s.Size(), s.CellM())
+	}
+}
