@@ -14,8 +14,8 @@ FUZZ_TIME ?= 60s
 # the code. A tree may be named before it exists.
 RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/livelog/... ./engine/journal/... ./cmd/...
 
-.PHONY: build test race fuzz bench fetch fetch-arrow generate generate-check format \
-	format-check vet lint lint-only vuln licences licences-check clean
+.PHONY: build test race fuzz bench fetch fetch-arrow fetch-clients generate generate-check \
+	generate-clients generate-clients-check format format-check vet lint lint-only vuln licences licences-check clean
 
 # build makes one static binary.
 build:
@@ -40,19 +40,33 @@ fuzz:
 bench:
 	$(GO) test -run '^$$' -bench . -benchmem ./...
 
-# fetch brings outside data for the tests, see DATA.md, and the library that
-# reads a compiled road map a second time.
-fetch: fetch-arrow
+# fetch brings outside data for the tests, see DATA.md, the library that reads a
+# compiled road map a second time, and the packages of the JavaScript client.
+fetch: fetch-arrow fetch-clients
 	$(GO) run ./fixtures/outside/fetch
 
 ARROW_JS = apache-arrow@21.2.0
 fetch-arrow:
 	npm install --silent --no-audit --no-fund --no-save --prefix build/outside $(ARROW_JS)
 
-# generate writes the Go code of the API beside its .proto files.
-generate:
+WEB = engine/client/web
+fetch-clients:
+	npm ci --silent --no-audit --no-fund --prefix $(WEB)
+
+# generate writes the Go code of the API beside its .proto files, and the
+# messages and types of the clients in other languages.
+generate: generate-clients
 	$(BUF) lint proto
 	$(BUF) generate proto --template proto/buf.gen.yaml
+
+# generate-clients needs protoc, of Debian's protobuf-compiler, and npm.
+generate-clients: fetch-clients
+	$(BUF) generate proto --template proto/buf.gen.clients.yaml
+	npm run --silent --prefix $(WEB) types
+
+generate-clients-check: generate-clients
+	@changed="$$(git status --porcelain engine/client)"; \
+	if [ -n "$$changed" ]; then echo "not what is committed:"; echo "$$changed"; git diff engine/client; exit 1; fi
 
 # generate-check generates into build/, in a folder that ./... passes over, and
 # compares with what is committed.

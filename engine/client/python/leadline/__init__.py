@@ -1,0 +1,149 @@
+"""Feeds a vehicle's measurements to a Leadline server and asks where vehicles are.
+
+    with leadline.Client("127.0.0.1:7700") as client:
+        with client.open({"vehicle": "van-1", "map": "quillmere"}) as drive:
+            for posterior in drive.send([{"time": "2030-05-01T12:00:15Z", "measurement": {"fix": {...}}}]):
+                print(posterior.mean.lon, posterior.mean.lat)
+            print(drive.end().posterior_sha256)
+        print(client.where("van-1").answers[0].posterior.status)
+        for news in client.follow("van-1"):
+            print(news.posterior.time.ToJsonString())
+
+Messages are those of leadline.v1, or dicts written as in drive files. Failures are grpc.RpcError: code()
+and details() say what was wrong. It needs the packages grpcio and protobuf.
+
+An aid and not certified: a position may be wrong although it is called located.
+"""
+import queue
+import secrets
+import time
+
+import grpc
+from google.protobuf import json_format
+
+from leadline import v1
+
+_SERVICE = "/leadline.v1.PositionService/"
+_OPTIONS = [
+    ("grpc.max_receive_message_length", 16 << 20), ("grpc.max_reconnect_backoff_ms", 2_000),
+    ("grpc.keepalive_time_ms", 30_000), ("grpc.keepalive_timeout_ms", 10_000),
+]
+
+
+def _message(kind, given):
+    return given if isinstance(given, kind) else json_format.ParseDict(given, kind())
+
+
+class Client:
+    """A connection to a server. patience_s is how long to try again when it is away."""
+
+    def __init__(self, address, patience_s=60):
+        self.patience_s = patience_s
+        self._channel = grpc.insecure_channel(address, options=_OPTIONS)
+        call = lambda kind, name, request, response: kind(_SERVICE + name, request.SerializeToString, response.FromString)
+        self._feed = call(self._channel.stream_stream, "Feed", v1.FeedRequest, v1.FeedResponse)
+        self._where = call(self._channel.unary_unary, "Where", v1.WhereRequest, v1.WhereResponse)
+        self._follow = call(self._channel.unary_stream, "Follow", v1.FollowRequest, v1.FollowResponse)
+
+    def __enter__(self):
+        return self
+
+    def __exit__(self, *_):
+        self._channel.close()
+
+    def where(self, *vehicles, timeout_s=10, **wishes):
+        """Says where vehicles are; wishes are further fields of WhereRequest."""
+        return self._where(v1.WhereRequest(vehicles=vehicles, **wishes), timeout=timeout_s)
+
+    def follow(self, *vehicles, **wishes):
+        """Tells of vehicles as they move on, of all if none is named; wishes are further fields of
+        FollowRequest. When the stream breaks, it goes on after what has been told."""
+        request, tries = v1.FollowRequest(vehicles=vehicles, **wishes), 0
+        while True:
+            stream, began = self._follow(request), time.monotonic()
+            try:
+                for news in stream:
+                    request.resume_token = news.resume_token
+                    yield news
+                return
+            except grpc.RpcError as e:
+                tries = tries + 1 if time.monotonic() < began + 5 else 1
+                if e.code() == grpc.StatusCode.INVALID_ARGUMENT and request.resume_token:
+                    request.resume_token = ""  # the server has begun anew
+                elif e.code() != grpc.StatusCode.UNAVAILABLE or tries > self.patience_s:
+                    raise
+                time.sleep(1)
+            finally:
+                stream.cancel()
+
+    def open(self, header, drive="", replace=False, every=False):
+        """Opens a drive. To continue one, give its name again, and send the same batches from the first
+        on: what the server has is not sent twice. every asks for every posterior instead of each batch's last."""
+        reply = v1.REPLY_EVERY if every else v1.REPLY_LATEST
+        return Drive(self, v1.Open(header=_message(v1.DriveHeader, header), drive=drive or secrets.token_hex(8), replace=replace, reply=reply))
+
+
+class Drive:
+    """An open drive, for one thread. opened is what the server said of it; refusals and withdrawn gather
+    what it refused, and the times of posteriors that hold no more."""
+
+    def __init__(self, client, opening):
+        self.refusals, self.withdrawn = [], []
+        self._client, self._opening, self._sent = client, opening, 0
+        self._connect()
+
+    def __enter__(self):
+        return self
+
+    def __exit__(self, *_):
+        """Breaks off. A drive that has not been ended can be continued."""
+        self._requests.put(None)
+        self._stream.cancel()
+
+    def _connect(self):
+        self._requests, self._lost = queue.SimpleQueue(), False
+        self._stream = self._client._feed(iter(self._requests.get, None))
+        self._requests.put(v1.FeedRequest(open=self._opening))
+        try:
+            self.opened = next(self._stream).opened
+        except BaseException:
+            self.__exit__()
+            raise
+
+    def send(self, measurements):
+        """Sends a batch, waits until the server has it, and returns the posteriors that it released."""
+        self._sent += 1
+        if self._sent <= self.opened.sequence:
+            return []
+        batch = v1.Batch(sequence=self._sent, measurements=[_message(v1.SensorMeasurement, m) for m in measurements])
+        return self._ask(v1.FeedRequest(batch=batch))[0]
+
+    def end(self):
+        """Ends the drive and returns the server's last word, a Closed."""
+        return self._ask(v1.FeedRequest(end=v1.End()))[1]
+
+    def _ask(self, request):
+        posteriors, until = [], time.monotonic() + self._client.patience_s
+        while True:
+            try:
+                if self._lost:
+                    self._connect()
+                self._requests.put(request)
+                for response in self._stream:
+                    kind = response.WhichOneof("message")
+                    if kind == "posterior":
+                        posteriors.append(response.posterior)
+                    elif kind == "withdrawn":
+                        self.withdrawn.extend(response.withdrawn.times)
+                    elif kind == "receipt":
+                        self.refusals.extend(response.receipt.refusals)
+                        return posteriors, None
+                    elif kind == "closed":
+                        return posteriors, response.closed
+                raise RuntimeError("the server ended the stream without a word")
+            except grpc.RpcError as e:
+                if e.code() != grpc.StatusCode.UNAVAILABLE or time.monotonic() > until:
+                    raise
+                self.__exit__()
+                self._lost = True
+                time.sleep(1)

@@ -1,0 +1,2 @@
+export function connect(url?: string | undefined): Client;
+import { Client } from "./client.js";

@@ -1,0 +1,11 @@
+// @ts-check
+// For pages: Where and Follow by Connect. A page of another origin than the
+// server's needs the server's flag --origin.
+import { createConnectTransport } from "@connectrpc/connect-web";
+import { Client } from "./client.js";
+
+/**
+ * Connects a page to a server.
+ * @param {string} [url] of the server; the page's own origin if left out
+ */
+export const connect = (url = location.origin) => new Client(createConnectTransport({ baseUrl: url, useBinaryFormat: true }));

@@ -1,0 +1,54 @@
+export function connect(address: string): NodeClient;
+/** A Client that can feed, too. */
+declare class NodeClient extends Client {
+    /** @param {string} address */
+    constructor(address: string);
+    /** Closes the connection. */
+    close: () => void;
+    /**
+     * Opens a drive. To continue one, give its name again, and send the same
+     * batches from the first on: what the server has is not sent twice.
+     * @param {object} header a DriveHeader
+     * @param {{drive?: string, replace?: boolean, every?: boolean}} [wishes] every:
+     *   every posterior instead of each batch's last
+     */
+    open(header: object, { drive, replace, every }?: {
+        drive?: string | undefined;
+        replace?: boolean | undefined;
+        every?: boolean | undefined;
+    } | undefined): Promise<Drive>;
+}
+import { Client } from "./client.js";
+/** An open drive. Wait for each call before the next. */
+declare class Drive {
+    /**
+     * @param {NodeClient} client
+     * @param {import("./leadline/v1/feed_pb.js").Open} opening
+     */
+    constructor(client: NodeClient, opening: import("./leadline/v1/feed_pb.js").Open);
+    /** What the server said of the drive. */
+    opened: import("./leadline/v1/feed_pb.js").Opened;
+    /** @type {import("./leadline/v1/feed_pb.js").Refusal[]} What the server refused. */
+    refusals: import("./leadline/v1/feed_pb.js").Refusal[];
+    /** @type {import("@bufbuild/protobuf/wkt").Timestamp[]} Of posteriors that hold no more. */
+    withdrawn: import("@bufbuild/protobuf/wkt").Timestamp[];
+    client: NodeClient;
+    opening: import("./leadline/v1/feed_pb.js").Open;
+    connect(): Promise<void>;
+    /**
+     * Sends a batch, waits until the server has it, and gives the posteriors that
+     * it released.
+     * @param {object[]} measurements SensorMeasurements
+     * @returns {Promise<import("./leadline/v1/posterior_pb.js").Posterior[]>}
+     */
+    send(measurements: object[]): Promise<import("./leadline/v1/posterior_pb.js").Posterior[]>;
+    /**
+     * Ends the drive and gives the server's last word.
+     * @returns {Promise<import("./leadline/v1/feed_pb.js").Closed>}
+     */
+    end(): Promise<import("./leadline/v1/feed_pb.js").Closed>;
+    /** Breaks off. A drive that has not been ended can be continued. */
+    leave(): void;
+    #private;
+}
+export {};

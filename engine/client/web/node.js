@@ -1,0 +1,167 @@
+// @ts-check
+// For programs of Node: everything, by gRPC.
+//
+//   const client = connect("127.0.0.1:7700");
+//   const drive = await client.open({ vehicle: "van-1", map: "quillmere" });
+//   const posteriors = await drive.send([{ time: "2030-05-01T12:00:15Z", measurement: { fix: { … } } }]);
+//   const closed = await drive.end();
+//   client.close();
+//
+// Headers and measurements are messages, or objects written as in drive files.
+import { create, fromJson } from "@bufbuild/protobuf";
+import { Code, ConnectError } from "@connectrpc/connect";
+import { Http2SessionManager, createGrpcTransport } from "@connectrpc/connect-node";
+import { Client, sleep } from "./client.js";
+import { DriveHeaderSchema } from "./leadline/v1/drive_pb.js";
+import { FeedRequestSchema, OpenSchema, OpenedSchema, Reply } from "./leadline/v1/feed_pb.js";
+import { SensorMeasurementSchema } from "./leadline/v1/measurement_pb.js";
+
+/**
+ * Connects a program to a server.
+ * @param {string} address HOST:PORT
+ */
+export const connect = (address) => new NodeClient(address);
+
+/** @type {(schema: any, given: any) => any} */
+const message = (schema, given) => (given.$typeName ? given : fromJson(schema, given));
+
+/** A Client that can feed, too. */
+class NodeClient extends Client {
+  /** @param {string} address */
+  constructor(address) {
+    const session = new Http2SessionManager("http://" + address, { pingIntervalMs: 30_000, pingTimeoutMs: 10_000 });
+    super(createGrpcTransport({ baseUrl: "http://" + address, sessionManager: session }));
+    /** Closes the connection. */
+    this.close = () => session.abort();
+  }
+
+  /**
+   * Opens a drive. To continue one, give its name again, and send the same
+   * batches from the first on: what the server has is not sent twice.
+   * @param {object} header a DriveHeader
+   * @param {{drive?: string, replace?: boolean, every?: boolean}} [wishes] every:
+   *   every posterior instead of each batch's last
+   */
+  async open(header, { drive = crypto.randomUUID(), replace = false, every = false } = {}) {
+    const opening = create(OpenSchema, { header: message(DriveHeaderSchema, header), drive, replace, reply: every ? Reply.EVERY : Reply.LATEST });
+    const opened = new Drive(this, opening);
+    await opened.connect();
+    return opened;
+  }
+}
+
+/** An open drive. Wait for each call before the next. */
+class Drive {
+  #sent = 0n;
+  #lost = false;
+  #requests = new Queue();
+  /** @type {AsyncIterator<any>} */ #responses = (async function* () {})();
+
+  /** What the server said of the drive. */
+  opened = create(OpenedSchema);
+  /** @type {import("./leadline/v1/feed_pb.js").Refusal[]} What the server refused. */
+  refusals = [];
+  /** @type {import("@bufbuild/protobuf/wkt").Timestamp[]} Of posteriors that hold no more. */
+  withdrawn = [];
+
+  /**
+   * @param {NodeClient} client
+   * @param {import("./leadline/v1/feed_pb.js").Open} opening
+   */
+  constructor(client, opening) {
+    this.client = client;
+    this.opening = opening;
+  }
+
+  async connect() {
+    this.#requests = new Queue();
+    this.#responses = this.client.calls.feed(this.#requests)[Symbol.asyncIterator]();
+    this.#requests.push({ case: "open", value: this.opening });
+    const first = (await this.#responses.next()).value;
+    this.opened = first.message.value;
+    this.#lost = false;
+  }
+
+  /**
+   * Sends a batch, waits until the server has it, and gives the posteriors that
+   * it released.
+   * @param {object[]} measurements SensorMeasurements
+   * @returns {Promise<import("./leadline/v1/posterior_pb.js").Posterior[]>}
+   */
+  async send(measurements) {
+    if (++this.#sent <= this.opened.sequence) return [];
+    const value = { sequence: this.#sent, measurements: measurements.map((m) => message(SensorMeasurementSchema, m)) };
+    return (await this.#ask({ case: "batch", value })).posteriors;
+  }
+
+  /**
+   * Ends the drive and gives the server's last word.
+   * @returns {Promise<import("./leadline/v1/feed_pb.js").Closed>}
+   */
+  async end() {
+    return (await this.#ask({ case: "end", value: {} })).closed;
+  }
+
+  /** Breaks off. A drive that has not been ended can be continued. */
+  leave() {
+    this.#requests.end();
+    this.#responses.return?.().catch(() => {});
+  }
+
+  /**
+   * @param {any} request
+   * @returns {Promise<any>}
+   */
+  async #ask(request) {
+    const until = Date.now() + this.client.patienceS * 1000;
+    const posteriors = [];
+    for (;;) {
+      try {
+        if (this.#lost) await this.connect();
+        this.#requests.push(request);
+        for (;;) {
+          const { value, done } = await this.#responses.next();
+          if (done) throw new Error("the server ended the stream without a word");
+          const m = value.message;
+          if (m.case === "posterior") posteriors.push(m.value);
+          else if (m.case === "withdrawn") this.withdrawn.push(...m.value.times);
+          else if (m.case === "receipt") {
+            this.refusals.push(...m.value.refusals);
+            return { posteriors };
+          } else if (m.case === "closed") return { posteriors, closed: m.value };
+        }
+      } catch (e) {
+        if (!(e instanceof ConnectError) || e.code !== Code.Unavailable || Date.now() > until) throw e;
+        this.leave();
+        this.#lost = true;
+        await sleep(1000);
+      }
+    }
+  }
+}
+
+/** Requests on their way: an iterable that is pushed to. */
+class Queue {
+  /** @type {import("./leadline/v1/feed_pb.js").FeedRequest[]} */ #waiting = [];
+  #over = false;
+  #wake = () => {};
+
+  /** @param {any} m */
+  push(m) {
+    this.#waiting.push(create(FeedRequestSchema, { message: m }));
+    this.#wake();
+  }
+
+  end() {
+    this.#over = true;
+    this.#wake();
+  }
+
+  async *[Symbol.asyncIterator]() {
+    for (;;) {
+      for (let m; (m = this.#waiting.shift()); ) yield m;
+      if (this.#over) return;
+      await new Promise((resolve) => (this.#wake = () => resolve(undefined)));
+    }
+  }
+}
