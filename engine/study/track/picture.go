@@ -2,7 +2,6 @@ package track
 
 import (
 	"fmt"
-	"image"
 	"image/color"
 	"io"
 	"math"
@@ -18,14 +17,6 @@ import (
 	"leadline/engine/summary"
 )
 
-// Ground is what lies under a track in a picture: roads as lines of the frame,
-// or heights; either may be nil.
-type Ground struct {
-	Frame  geo.Frame
-	Roads  [][]geo.Point
-	Relief geo.Field
-}
-
 // Colours that people with any of the common colour deficiencies tell apart
 // (Okabe and Ito, "Color Universal Design", 2008), on white or light grey.
 var (
@@ -34,15 +25,14 @@ var (
 	meanColour   = color.RGBA{0xd5, 0x5e, 0x00, 0xff}  // vermilion
 	radiusColour = color.NRGBA{0xe6, 0x9f, 0x00, 0x50} // orange, translucent
 	searchColour = color.RGBA{0x55, 0x55, 0x55, 0xff}
+	placeColour  = color.RGBA{0x00, 0x9e, 0x73, 0xff} // bluish green
 )
 
 const (
 	pictureDPI = 160
 	// pictureSide is the longer side of the map in the picture.
 	pictureSide = 8 * vg.Inch
-	// mostCircles bounds the radii that are drawn, reliefCells the relief.
-	mostCircles = 150
-	reliefCells = 500
+	mostCircles = 150 // radii that are drawn
 )
 
 // Picture draws the track over its ground as a PNG: the truth, the mean while
@@ -60,7 +50,7 @@ func (t *Track) Picture(w io.Writer, g Ground) error {
 	var search plotter.XYs
 	was := false
 	every := max(1, t.count(summary.Located)/mostCircles)
-	n := 0
+	n, drawn := 0, geo.Point{E: math.Inf(1)} // where the last circle is
 	for _, p := range t.Posteriors {
 		if p.Status != summary.Located {
 			was = false
@@ -75,9 +65,11 @@ func (t *Track) Picture(w io.Writer, g Ground) error {
 		line := &located[len(located)-1]
 		*line = append(*line, plotter.XY{X: p.MeanFrame.E, Y: p.MeanFrame.N})
 		box = box.Extend(p.MeanFrame)
-		if n%every == 0 {
+		// Where the vehicle stands, circles would cover one another.
+		if n%every == 0 && p.MeanFrame.Sub(drawn).Norm() > p.Radius95M/2 {
 			_, k := g.Frame.Convergence(p.MeanFrame)
 			circles = append(circles, circle(p.MeanFrame, p.Radius95M*k))
+			drawn = p.MeanFrame
 		}
 		n++
 	}
@@ -172,6 +164,23 @@ func (t *Track) Picture(w io.Writer, g Ground) error {
 			show("mean, located", l)
 		}
 	}
+	if at, names := g.places(box); len(at) > 0 {
+		s, err := plotter.NewScatter(km(at))
+		if err != nil {
+			return err
+		}
+		s.GlyphStyle = draw.GlyphStyle{Color: placeColour, Radius: vg.Points(4.5), Shape: draw.PyramidGlyph{}}
+		l, err := plotter.NewLabels(plotter.XYLabels{XYs: at, Labels: names})
+		if err != nil {
+			return err
+		}
+		for i := range l.TextStyle {
+			l.TextStyle[i].Font.Variant, l.TextStyle[i].Font.Size = "Sans", vg.Points(8)
+		}
+		l.Offset = vg.Point{X: vg.Points(6), Y: vg.Points(2)}
+		p.Add(s, l)
+		show("post or beacon", s)
+	}
 	p.X.Min, p.X.Max, p.Y.Min, p.Y.Max = 0, wide, 0, high
 	p.X.Padding, p.Y.Padding = 0, 0
 	for _, e := range legend {
@@ -243,88 +252,4 @@ func circle(at geo.Point, radiusM float64) plotter.XYs {
 		xys[i] = plotter.XY{X: at.E + radiusM*d.E, Y: at.N + radiusM*d.N}
 	}
 	return xys
-}
-
-// margin widens a box by a tenth, to at least 200 m and a third of its longer
-// side.
-func margin(b geo.Box) geo.Box {
-	wide, high := b.Max.E-b.Min.E, b.Max.N-b.Min.N
-	least := math.Max(200, math.Max(wide, high)/3)
-	grow := func(lo, hi float64) (float64, float64) {
-		extra := math.Max(0.1*(hi-lo), (least-(hi-lo))/2)
-		return lo - extra, hi + extra
-	}
-	b.Min.E, b.Max.E = grow(b.Min.E, b.Max.E)
-	b.Min.N, b.Max.N = grow(b.Min.N, b.Max.N)
-	return b
-}
-
-// clip returns a road's points if any part of it may be in the box.
-func clip(road []geo.Point, b geo.Box) plotter.XYs {
-	of := geo.EmptyBox()
-	for _, p := range road {
-		of = of.Extend(p)
-	}
-	if of.Min.E > b.Max.E || of.Max.E < b.Min.E || of.Min.N > b.Max.N || of.Max.N < b.Min.N {
-		return nil
-	}
-	xys := make(plotter.XYs, len(road))
-	for i, p := range road {
-		xys[i] = plotter.XY{X: p.E, Y: p.N}
-	}
-	return xys
-}
-
-// within keeps the points in a box.
-func within(xys plotter.XYs, b geo.Box) plotter.XYs {
-	var in plotter.XYs
-	for _, xy := range xys {
-		if b.Contains(geo.Point{E: xy.X, N: xy.Y}) {
-			in = append(in, xy)
-		}
-	}
-	return in
-}
-
-// relief paints heights in light greys, high is light, shaded from the
-// north-west; voids stay white.
-func relief(f geo.Field, b geo.Box) image.Image {
-	wide, high := b.Max.E-b.Min.E, b.Max.N-b.Min.N
-	cell := math.Max(wide, high) / reliefCells
-	w, h := max(1, int(wide/cell)), max(1, int(high/cell))
-	rows := make([]geo.Heights, h)
-	e, n := make([]float64, w), make([]float64, w)
-	lo, hi, steep := math.Inf(1), math.Inf(-1), 0.0
-	for y := range rows {
-		for x := range w {
-			e[x] = b.Min.E + (float64(x)+0.5)*wide/float64(w)
-			n[x] = b.Max.N - (float64(y)+0.5)*high/float64(h)
-		}
-		rows[y] = geo.Heights{HeightM: make([]float64, w), SlopeE: make([]float64, w), SlopeN: make([]float64, w)}
-		f.Sample(rows[y], e, n)
-		for x, m := range rows[y].HeightM {
-			if m == m {
-				lo, hi = math.Min(lo, m), math.Max(hi, m)
-				steep = math.Max(steep, math.Max(math.Abs(rows[y].SlopeE[x]), math.Abs(rows[y].SlopeN[x])))
-			}
-		}
-	}
-	img := image.NewRGBA(image.Rect(0, 0, w, h))
-	for y := range rows {
-		for x, m := range rows[y].HeightM {
-			v := 255.0
-			if m == m {
-				tone, shade := 0.5, 0.0
-				if hi > lo {
-					tone = (m - lo) / (hi - lo)
-				}
-				if steep > 0 {
-					shade = (rows[y].SlopeE[x] - rows[y].SlopeN[x]) / (2 * steep)
-				}
-				v = 170 + 55*tone + 25*shade
-			}
-			img.Set(x, y, color.Gray{Y: uint8(math.Max(0, math.Min(255, v)))})
-		}
-	}
-	return img
 }

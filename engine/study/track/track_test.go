@@ -191,6 +191,11 @@ func TestPicture(t *testing.T) {
 	if greys < 20 {
 		t.Errorf("a slope in %d greys", greys)
 	}
+	places := roads
+	places.Places = []Place{{"mast", frame.Inverse(geo.Point{E: 20, N: 30})}, {"far", frame.Inverse(geo.Point{E: 9e4})}}
+	if with, without := draw(walk(), places)[placeColour], n[placeColour]; with < 20 || without > 0 {
+		t.Errorf("%d pixels of places, %d without any", with, without)
+	}
 	never := walk()
 	never.Posteriors, never.Truth = never.Posteriors[:2], nil
 	if n := draw(never, roads); n[searchColour] < 10 || n[meanColour]+n[truthColour] > 0 {
