@@ -7,15 +7,17 @@ declare class NodeClient extends Client {
     close: () => void;
     /**
      * Opens a drive. To continue one, give its name again, and send the same
-     * batches from the first on: what the server has is not sent twice.
+     * batches from the first on, which are not sent twice, or with onward those
+     * that come after what the server has. replace gives up another drive of the
+     * vehicle; every asks for every posterior instead of each batch's last.
      * @param {object} header a DriveHeader
-     * @param {{drive?: string, replace?: boolean, every?: boolean}} [wishes] every:
-     *   every posterior instead of each batch's last
+     * @param {{drive?: string, replace?: boolean, every?: boolean, onward?: boolean}} [wishes]
      */
-    open(header: object, { drive, replace, every }?: {
+    open(header: object, { drive, replace, every, onward }?: {
         drive?: string | undefined;
         replace?: boolean | undefined;
         every?: boolean | undefined;
+        onward?: boolean | undefined;
     } | undefined): Promise<Drive>;
 }
 import { Client } from "./client.js";
@@ -26,6 +28,8 @@ declare class Drive {
      * @param {import("./leadline/v1/feed_pb.js").Open} opening
      */
     constructor(client: NodeClient, opening: import("./leadline/v1/feed_pb.js").Open);
+    /** Batches that were sent. */
+    sent: bigint;
     /** What the server said of the drive. */
     opened: import("./leadline/v1/feed_pb.js").Opened;
     /** @type {import("./leadline/v1/feed_pb.js").Refusal[]} What the server refused. */

@@ -9,9 +9,9 @@
 //
 // Headers and measurements are messages, or objects written as in drive files.
 import { create, fromJson } from "@bufbuild/protobuf";
-import { Code, ConnectError } from "@connectrpc/connect";
+import { ConnectError } from "@connectrpc/connect";
 import { Http2SessionManager, createGrpcTransport } from "@connectrpc/connect-node";
-import { Client, sleep } from "./client.js";
+import { Client, away, sleep } from "./client.js";
 import { DriveHeaderSchema } from "./leadline/v1/drive_pb.js";
 import { FeedRequestSchema, OpenSchema, OpenedSchema, Reply } from "./leadline/v1/feed_pb.js";
 import { SensorMeasurementSchema } from "./leadline/v1/measurement_pb.js";
@@ -37,22 +37,25 @@ class NodeClient extends Client {
 
   /**
    * Opens a drive. To continue one, give its name again, and send the same
-   * batches from the first on: what the server has is not sent twice.
+   * batches from the first on, which are not sent twice, or with onward those
+   * that come after what the server has. replace gives up another drive of the
+   * vehicle; every asks for every posterior instead of each batch's last.
    * @param {object} header a DriveHeader
-   * @param {{drive?: string, replace?: boolean, every?: boolean}} [wishes] every:
-   *   every posterior instead of each batch's last
+   * @param {{drive?: string, replace?: boolean, every?: boolean, onward?: boolean}} [wishes]
    */
-  async open(header, { drive = crypto.randomUUID(), replace = false, every = false } = {}) {
+  async open(header, { drive = crypto.randomUUID(), replace = false, every = false, onward = false } = {}) {
     const opening = create(OpenSchema, { header: message(DriveHeaderSchema, header), drive, replace, reply: every ? Reply.EVERY : Reply.LATEST });
     const opened = new Drive(this, opening);
     await opened.connect();
+    if (onward) opened.sent = opened.opened.sequence;
     return opened;
   }
 }
 
 /** An open drive. Wait for each call before the next. */
 class Drive {
-  #sent = 0n;
+  /** Batches that were sent. */
+  sent = 0n;
   #lost = false;
   #requests = new Queue();
   /** @type {AsyncIterator<any>} */ #responses = (async function* () {})();
@@ -89,8 +92,8 @@ class Drive {
    * @returns {Promise<import("./leadline/v1/posterior_pb.js").Posterior[]>}
    */
   async send(measurements) {
-    if (++this.#sent <= this.opened.sequence) return [];
-    const value = { sequence: this.#sent, measurements: measurements.map((m) => message(SensorMeasurementSchema, m)) };
+    if (++this.sent <= this.opened.sequence) return [];
+    const value = { sequence: this.sent, measurements: measurements.map((m) => message(SensorMeasurementSchema, m)) };
     return (await this.#ask({ case: "batch", value })).posteriors;
   }
 
@@ -131,7 +134,7 @@ class Drive {
           } else if (m.case === "closed") return { posteriors, closed: m.value };
         }
       } catch (e) {
-        if (!(e instanceof ConnectError) || e.code !== Code.Unavailable || Date.now() > until) throw e;
+        if (!(e instanceof ConnectError) || !away(e) || Date.now() > until) throw e;
         this.leave();
         this.#lost = true;
         await sleep(1000);

@@ -76,21 +76,24 @@ class Client:
             finally:
                 stream.cancel()
 
-    def open(self, header, drive="", replace=False, every=False):
-        """Opens a drive. To continue one, give its name again, and send the same batches from the first
-        on: what the server has is not sent twice. every asks for every posterior instead of each batch's last."""
-        reply = v1.REPLY_EVERY if every else v1.REPLY_LATEST
-        return Drive(self, v1.Open(header=_message(v1.DriveHeader, header), drive=drive or secrets.token_hex(8), replace=replace, reply=reply))
+    def open(self, header, drive="", replace=False, every=False, onward=False):
+        """Opens a drive. To continue one, give its name again, and send the same batches from the first on,
+        which are not sent twice, or with onward those that come after what the server has. replace gives up
+        another drive of the vehicle; every asks for every posterior instead of each batch's last."""
+        opening = v1.Open(header=_message(v1.DriveHeader, header), drive=drive or secrets.token_hex(8), replace=replace)
+        opening.reply = v1.REPLY_EVERY if every else v1.REPLY_LATEST
+        return Drive(self, opening, onward)
 
 
 class Drive:
     """An open drive, for one thread. opened is what the server said of it; refusals and withdrawn gather
     what it refused, and the times of posteriors that hold no more."""
 
-    def __init__(self, client, opening):
+    def __init__(self, client, opening, onward):
         self.refusals, self.withdrawn = [], []
-        self._client, self._opening, self._sent = client, opening, 0
+        self._client, self._opening = client, opening
         self._connect()
+        self._sent = self.opened.sequence if onward else 0
 
     def __enter__(self):
         return self

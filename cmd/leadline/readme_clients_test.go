@@ -1,0 +1,64 @@
+package main
+
+import (
+	"os"
+	"os/exec"
+	"path/filepath"
+	"strings"
+	"testing"
+)
+
+// TestReadmePrograms runs the programs of the README's chapter on connecting
+// one's own as they stand, but for the server's address.
+func TestReadmePrograms(t *testing.T) {
+	t.Parallel()
+	page := readPage(t, "README.md")
+	_, page, _ = strings.Cut(page, "\n## Connect your own programs")
+	page, _, _ = strings.Cut(page, "\n## ")
+	mapPath := filepath.Join(t.TempDir(), "quillmere.roads.arrow")
+	good(t, "map", "roads", checkout+"/fixtures/roads/quillmere.geojson", "-o", mapPath)
+	srv := serveMaps(t, "--map", mapPath)
+	good(t, "feed", checkout+"/docs/first.drive.jsonl", "--to", srv.address)
+
+	for language, run := range map[string]func(t *testing.T, code string) *program{
+		"go": func(t *testing.T, code string) *program {
+			// As where the page says that it should lie: ./... passes over it.
+			if err := os.MkdirAll(checkout+"/build", 0o755); err != nil {
+				t.Fatal(err)
+			}
+			dir, err := os.MkdirTemp(checkout+"/build", "_readme-")
+			if err != nil {
+				t.Fatal(err)
+			}
+			t.Cleanup(func() { _ = os.RemoveAll(dir) })
+			return start(t, "go", "run", writeText(t, filepath.Join(dir, "main.go"), code))
+		},
+		"python": func(t *testing.T, code string) *program { return start(t, python(t), "-c", code) },
+		"sh": func(t *testing.T, code string) *program {
+			if _, err := exec.LookPath("curl"); err != nil {
+				t.Skip("curl is not installed")
+			}
+			return start(t, "sh", "-c", code)
+		},
+		"js": func(t *testing.T, code string) *program {
+			code = strings.ReplaceAll(code, "./node.js", absolute(t, webClient+"/node.js"))
+			return start(t, node(t), "--input-type=module", "-e", code)
+		},
+	} {
+		t.Run(language, func(t *testing.T) {
+			t.Parallel()
+			blocks := strings.Split(page, "\n```"+language+"\n")
+			if len(blocks) != 2 {
+				t.Fatalf("README.md has %d programs in %s there, want 1", len(blocks)-1, language)
+			}
+			code, _, _ := strings.Cut(blocks[1], "```")
+			if !strings.Contains(code, defaultAddress) {
+				t.Fatalf("the program in %s calls no server:\n%s", language, code)
+			}
+			text := run(t, strings.ReplaceAll(code, defaultAddress, srv.address)).end(t)
+			if !strings.Contains(text, "-29.998") { // where the van is, to 80 m
+				t.Errorf("the program in %s prints %s", language, text)
+			}
+		})
+	}
+}
