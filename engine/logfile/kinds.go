@@ -115,8 +115,7 @@ func measurement(kind string, c *cells, since, at sensor.Time) (sensor.Measureme
 }
 
 func usable(m sensor.Measurement, at sensor.Time) error {
-	const last = sensor.Time(9.2e18) // as sensor.Suite.Prepare has it
-	if at < 0 || at > last {
+	if at < 0 || at > lastTime {
 		return errTime
 	}
 	return m.Check(at)
@@ -186,7 +185,7 @@ func truth(c *cells, at sensor.Time) (*Truth, error) {
 	err := t.Position.Check()
 	switch {
 	case err != nil:
-	case at < 0 || at > 9.2e18:
+	case at < 0 || at > lastTime:
 		err = errTime
 	case !(t.SigmaM >= 0) || math.IsInf(t.SigmaM, 0) || !geo.Finite(t.HeightM):
 		err = errTruth

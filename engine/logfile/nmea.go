@@ -1,6 +1,7 @@
 package logfile
 
 import (
+	"bytes"
 	"errors"
 	"fmt"
 	"io"
@@ -98,7 +99,7 @@ func (n *NMEA) Line(line []byte, whole bool, arrived sensor.Time) error {
 		return nil
 	}
 	s, pass, bad := frame(line)
-	if i := strings.IndexByte(string(s.before), '$'); i >= 0 {
+	if i := bytes.IndexByte(s.before, '$'); i >= 0 {
 		n.refuse(&refusal{i + 1, "cut off by the next sentence", string(s.before[i:])})
 	}
 	switch {
@@ -155,10 +156,8 @@ func (n *NMEA) End() error {
 			return err
 		}
 	}
-	if n.o.Time.From == "" || n.o.Time.From == FromSentence {
-		if !n.utc.known {
-			return fmt.Errorf("%s: no sentence says the time and the date (ZDA, or RMC with a fix): state the date, or take the times from a prefix or a tag", n.tally.Log)
-		}
+	if from := n.o.Time.From; (from == "" || from == FromSentence) && !n.utc.known {
+		return fmt.Errorf("%s: no sentence says the time and the date (ZDA, or RMC with a fix): state the date, or take the times from a prefix or a tag", n.tally.Log)
 	}
 	return nil
 }
@@ -176,14 +175,15 @@ func (n *NMEA) all(rs []reading, at sensor.Time) error {
 	return n.use(rs)
 }
 
+// headingsFirst orders readings of one time: others are reckoned with a heading.
 func headingsFirst(a, b reading) int {
-	first := func(r reading) int {
-		if r.of == heading {
-			return 0
-		}
+	switch {
+	case a.of == heading && b.of != heading:
+		return -1
+	case b.of == heading && a.of != heading:
 		return 1
 	}
-	return first(a) - first(b)
+	return 0
 }
 
 // bySentence gives readings the time that the sentence says, or the epoch's.
@@ -204,7 +204,7 @@ func (n *NMEA) bySentence(s *sentence, said *said) error {
 			if !n.utc.known {
 				n.tally.pass("before the first date")
 			} else {
-				n.refuse(&refusal{1, s.kind() + ": its time goes back", fmt.Sprintf("%v after %v", clock(at), clock(n.utc.last))})
+				n.refuse(&refusal{1, s.kind() + ": its time goes back", fmt.Sprintf("%s after %s", stamp(at), stamp(n.utc.last))})
 			}
 			return nil
 		}

@@ -196,7 +196,9 @@ func (s *stream) increments(t *table, c *cells, at sensor.Time) (since sensor.Ti
 		if !ok {
 			return at, "", "" // it was refused
 		}
-		since = from
+		if since = from; since >= at {
+			return at, "since is not before the time", fmt.Sprintf("%s and %s", stamp(since), stamp(at))
+		}
 	case s.length != nil:
 		v := 0.0
 		if s.length.column < 0 {
@@ -225,7 +227,7 @@ func (s *stream) increments(t *table, c *cells, at sensor.Time) (since sensor.Ti
 	if s.diff {
 		switch dt := at - since; {
 		case dt < 0:
-			return at, "time goes back", fmt.Sprintf("%v after %v", clock(at), clock(since))
+			return at, "time goes back", fmt.Sprintf("%s after %s", stamp(at), stamp(since))
 		case dt == 0:
 			s.hold(c)
 			return at, "", ""

@@ -222,6 +222,19 @@ sensors: [{name: x, kind: travel, fields: {distance_m: `+strings.Replace(c.field
 	}
 }
 
+// Increments that say themselves when they begin must do so before they end.
+func TestSinceAndIntervalRefused(t *testing.T) {
+	for columns, rows := range map[string]string{
+		"since_column: b":       "5,1,5|5,1,6|5,1,x|5,1,4",
+		"interval: {column: b}": "5,1,0|5,1,-1|5,1,x|5,1,",
+	} {
+		g := readCSV(t, "t,a,b\n"+strings.ReplaceAll(rows, "|", "\n")+"\n", timeColumn+"sensors: [{kind: travel, "+columns+", fields: {distance_m: {column: a}}}]\n")
+		if len(g.events) > 1 || g.tally.Unusable() != 4-len(g.events) {
+			t.Errorf("%s: %d events, refused %+v", columns, len(g.events), g.tally.Refused)
+		}
+	}
+}
+
 // What is wrong with a row is located, and the rest of the log is read.
 func TestRefusedRows(t *testing.T) {
 	columns := timeColumn + `

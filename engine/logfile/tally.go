@@ -100,6 +100,11 @@ func widen(from, to *time.Time, at time.Time) {
 
 func clock(t sensor.Time) time.Time { return time.Unix(0, int64(t)).UTC() }
 
+func stamp(t sensor.Time) string { return clock(t).Format(time.RFC3339Nano) }
+
+// lastTime is the last that sensor.Suite.Prepare takes, in 2261.
+const lastTime = sensor.Time(9.2e18)
+
 // pass counts what is no fault and is not used.
 func (t *Tally) pass(what string) {
 	if _, known := t.PassedOver[what]; !known && len(t.PassedOver) >= maxReasons {

@@ -99,7 +99,7 @@ func parseCount(text string, unitNS int64, start sensor.Time) (sensor.Time, erro
 	if err != nil || strings.ContainsAny(fraction, "eE") || n > math.MaxInt64/unitNS-1 {
 		v, err := strconv.ParseFloat(text, 64)
 		ns := math.Round(v * float64(unitNS))
-		if err != nil || !(math.Abs(ns) < 9.2e18) {
+		if err != nil || !(math.Abs(ns) < float64(lastTime)) {
 			return 0, errTime
 		}
 		return after(start, int64(ns))
@@ -117,7 +117,7 @@ func parseCount(text string, unitNS int64, start sensor.Time) (sensor.Time, erro
 
 func after(start sensor.Time, ns int64) (sensor.Time, error) {
 	t := start + sensor.Time(ns)
-	if t < 0 || ns > 0 && t < start || t > 9.2e18 {
+	if t < 0 || ns > 0 && t < start || t > lastTime {
 		return 0, errTime
 	}
 	return t, nil

@@ -1,6 +1,7 @@
 package logfile
 
 import (
+	"cmp"
 	"slices"
 	"time"
 
@@ -140,15 +141,7 @@ func (e *epochs) close(to sensor.Time) []reading {
 		}
 	}
 	slices.SortStableFunc(e.pending, func(a, b reading) int {
-		switch {
-		case a.at != b.at:
-			return int(max(-1, min(1, a.at-b.at)))
-		case a.of == heading && b.of != heading:
-			return -1
-		case b.of == heading && a.of != heading:
-			return 1
-		}
-		return 0
+		return cmp.Or(cmp.Compare(a.at, b.at), headingsFirst(a, b))
 	})
 	out := e.pending
 	e.pending = e.pending[:0]
