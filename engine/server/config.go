@@ -31,6 +31,8 @@ type Config struct {
 	Origins []string
 	// Page answers what HTTP clients ask beside calls; nil is 404.
 	Page http.Handler
+	// Version is the server's own, which every answer names.
+	Version string
 	// Now is the clock by which answers are dated; nil is time.Now.
 	Now func() time.Time
 	// Log takes what the operator should know; nil is nothing.
@@ -49,6 +51,7 @@ type Map struct {
 type Session interface {
 	Add(sensor.Event) ([]*summary.Posterior, error)
 	Flush() []*summary.Posterior
+	Withdrawn() []sensor.Time
 	Latest() *summary.Posterior
 	Counts() (accepted, refused uint64)
 	Hash() string
@@ -66,6 +69,12 @@ type Asker interface {
 }
 
 var _ Session = (*session.Session)(nil)
+
+// Foresight is a session whose belief can be carried on to a time without
+// measurements. Where uses it for predict_to_now.
+type Foresight interface {
+	Ahead() (*session.Ahead, error)
+}
 
 // Limits bound what clients can make the server hold. A limit that is 0 has
 // its default.
@@ -95,6 +104,11 @@ type Limits struct {
 	QueueBatches int
 	// Regions is the number of region fractions in one question. Default 8.
 	Regions int
+	// Questions is the number of vehicles in one question. Default 100.
+	Questions int
+	// Predictions is the number of beliefs that are carried on to the present
+	// at once; each takes memory and up to a second. Default 2.
+	Predictions int
 	// OpenTimeout is how long a stream may take to say what it is for.
 	// Default 10 s.
 	OpenTimeout time.Duration
@@ -111,6 +125,8 @@ func (l *Limits) fields() []limit {
 		{"BatchMeasurements", &l.BatchMeasurements, 1024},
 		{"QueueBatches", &l.QueueBatches, 4},
 		{"Regions", &l.Regions, 8},
+		{"Questions", &l.Questions, 100},
+		{"Predictions", &l.Predictions, 2},
 	}
 }
 

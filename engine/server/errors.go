@@ -4,8 +4,10 @@ import (
 	"errors"
 	"fmt"
 	"slices"
+	"strconv"
 	"strings"
 
+	"google.golang.org/genproto/googleapis/rpc/errdetails"
 	"google.golang.org/grpc/codes"
 	"google.golang.org/grpc/status"
 
@@ -13,15 +15,87 @@ import (
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
-// Errors that more than one place answers with.
-var (
-	errDraining  = status.Error(codes.Unavailable, "the server stops: open the drive again later; what was not acknowledged must be sent again")
-	errTakenOver = status.Error(codes.Aborted, "another stream has opened this drive: only one may feed it")
-	errReplaced  = status.Error(codes.Aborted, "the vehicle has opened another drive in place of this one")
-)
+// domain is that of the reasons in the server's errors.
+const domain = "leadline.v1"
 
-// reasons are the API's words for a session's.
-var reasons = map[session.Reason]leadlinev1.Reason{
+// reasonCodes are the codes of the reasons why calls fail, as reason.proto has
+// them.
+var reasonCodes = map[leadlinev1.Reason]codes.Code{
+	leadlinev1.Reason_REASON_BAD_FIELD:       codes.InvalidArgument,
+	leadlinev1.Reason_REASON_WRONG_MESSAGE:   codes.InvalidArgument,
+	leadlinev1.Reason_REASON_UNKNOWN_MAP:     codes.NotFound,
+	leadlinev1.Reason_REASON_UNKNOWN_SUITE:   codes.NotFound,
+	leadlinev1.Reason_REASON_UNKNOWN_VEHICLE: codes.NotFound,
+	leadlinev1.Reason_REASON_BAD_START:       codes.InvalidArgument,
+	leadlinev1.Reason_REASON_OTHER_HEADER:    codes.FailedPrecondition,
+	leadlinev1.Reason_REASON_OTHER_DRIVE:     codes.AlreadyExists,
+	leadlinev1.Reason_REASON_OUT_OF_ORDER:    codes.FailedPrecondition,
+	leadlinev1.Reason_REASON_DRIVE_ENDED:     codes.FailedPrecondition,
+	leadlinev1.Reason_REASON_NO_POSTERIOR:    codes.FailedPrecondition,
+	leadlinev1.Reason_REASON_SERVER_FULL:     codes.ResourceExhausted,
+	leadlinev1.Reason_REASON_SILENT:          codes.DeadlineExceeded,
+	leadlinev1.Reason_REASON_TAKEN_OVER:      codes.Aborted,
+	leadlinev1.Reason_REASON_REPLACED:        codes.Aborted,
+	leadlinev1.Reason_REASON_STOPPING:        codes.Unavailable,
+	leadlinev1.Reason_REASON_SESSION_FAILED:  codes.Internal,
+	leadlinev1.Reason_REASON_NOT_OFFERED:     codes.Unimplemented,
+	leadlinev1.Reason_REASON_BAD_TOKEN:       codes.InvalidArgument,
+	leadlinev1.Reason_REASON_BAD_MAP:         codes.InvalidArgument,
+	leadlinev1.Reason_REASON_MAP_EXISTS:      codes.AlreadyExists,
+}
+
+// about says what a failure is about, for programs: vehicle, drive, map, suite,
+// field (of the request), method, limit (its name) and most (its value).
+type about map[string]string
+
+// refuse makes the error of a call. Every error that the server itself answers
+// with comes from here; only those of gRPC do not (a message that is too large
+// or no message, a call that the client gave up).
+func refuse(reason leadlinev1.Reason, on about, format string, args ...any) error {
+	code, ok := reasonCodes[reason]
+	if !ok {
+		panic(fmt.Sprintf("server: %v is no reason of a call", reason))
+	}
+	info := &errdetails.ErrorInfo{
+		Reason: strings.TrimPrefix(reason.String(), "REASON_"), Domain: domain, Metadata: map[string]string{},
+	}
+	for k, v := range on {
+		info.Metadata[k] = clip(v)
+	}
+	st, err := status.New(code, clip(fmt.Sprintf(format, args...))).WithDetails(info)
+	if err != nil {
+		panic("server: " + err.Error()) // the code is none of success
+	}
+	return st.Err()
+}
+
+// badField is the refusal of a field of a request, by its path.
+func badField(path, format string, args ...any) error {
+	return refuse(leadlinev1.Reason_REASON_BAD_FIELD, about{"field": path}, format, args...)
+}
+
+// full is the refusal of what would exceed a limit of the server.
+func full(limit string, most int, format string, args ...any) error {
+	return refuse(leadlinev1.Reason_REASON_SERVER_FULL, about{"limit": limit, "most": strconv.Itoa(most)}, format, args...)
+}
+
+// failure words an error of refuse for a part of an answer.
+func failure(err error) *leadlinev1.Failure {
+	st := status.Convert(err)
+	f := &leadlinev1.Failure{Message: st.Message()}
+	for _, d := range st.Details() {
+		if info, ok := d.(*errdetails.ErrorInfo); ok {
+			f.Reason = leadlinev1.Reason(leadlinev1.Reason_value["REASON_"+info.GetReason()])
+		}
+	}
+	return f
+}
+
+// errStopping answers whoever is there when the server stops.
+var errStopping = refuse(leadlinev1.Reason_REASON_STOPPING, nil, "the server stops: open the drive again later; what was not acknowledged must be sent again")
+
+// measurementReasons are the API's words for a session's.
+var measurementReasons = map[session.Reason]leadlinev1.Reason{
 	session.Unusable:    leadlinev1.Reason_REASON_UNUSABLE,
 	session.WrongSpace:  leadlinev1.Reason_REASON_WRONG_SPACE,
 	session.TooLate:     leadlinev1.Reason_REASON_TOO_LATE,
@@ -40,7 +114,7 @@ func refusal(i int, m *leadlinev1.SensorMeasurement, err error) (*leadlinev1.Ref
 	if !errors.As(err, &ref) {
 		return nil, false
 	}
-	r.Reason, r.Detail = reasons[ref.Reason], clip(ref.Detail)
+	r.Reason, r.Detail = measurementReasons[ref.Reason], clip(ref.Detail)
 	return r, true
 }
 

@@ -7,7 +7,6 @@ import (
 	"time"
 
 	"google.golang.org/grpc"
-	"google.golang.org/grpc/codes"
 	"google.golang.org/grpc/status"
 
 	leadlinev1 "leadline/proto/leadline/v1"
@@ -25,7 +24,7 @@ type received struct {
 func (s *Server) Feed(stream feedStream) error {
 	if n, most := s.streams.Add(1), int64(s.cfg.Limits.Streams); n > most {
 		s.streams.Add(-1)
-		return status.Errorf(codes.ResourceExhausted, "the server has its %d streams: try later, or raise the limit", most)
+		return full("streams", int(most), "the server has its %d streams: try later, or raise the limit", most)
 	}
 	defer s.streams.Add(-1)
 	ctx := stream.Context()
@@ -82,7 +81,7 @@ func (s *Server) first(ctx context.Context, requests <-chan received) (*leadline
 	select {
 	case r := <-requests:
 		if errors.Is(r.err, io.EOF) {
-			return nil, status.Error(codes.InvalidArgument, "the stream ended without a message: send open first")
+			return nil, refuse(leadlinev1.Reason_REASON_WRONG_MESSAGE, nil, "the stream ended without a message: send open first")
 		}
 		if r.err != nil {
 			return nil, r.err
@@ -90,11 +89,11 @@ func (s *Server) first(ctx context.Context, requests <-chan received) (*leadline
 		if m := r.message.GetOpen(); m != nil {
 			return m, nil
 		}
-		return nil, status.Error(codes.InvalidArgument, "the first message is not open: send open first")
+		return nil, refuse(leadlinev1.Reason_REASON_WRONG_MESSAGE, nil, "the first message is not open: send open first")
 	case <-late.C:
-		return nil, status.Errorf(codes.DeadlineExceeded, "no message for %v: send open first", s.cfg.Limits.OpenTimeout)
+		return nil, refuse(leadlinev1.Reason_REASON_SILENT, nil, "no message for %v: send open first", s.cfg.Limits.OpenTimeout)
 	case <-s.draining:
-		return nil, errDraining
+		return nil, errStopping
 	case <-ctx.Done():
 		return nil, status.FromContextError(ctx.Err()).Err()
 	}
@@ -114,7 +113,7 @@ func (s *Server) carry(ctx context.Context, stream feedStream, requests <-chan r
 		case held != nil:
 			from, w = nil, *held
 		case stopping:
-			from, w = nil, work{hangup: true, err: errDraining}
+			from, w = nil, work{hangup: true, err: errStopping}
 		default:
 			in = nil
 		}
@@ -142,7 +141,7 @@ func (s *Server) carry(ctx context.Context, stream feedStream, requests <-chan r
 				return err
 			}
 		case <-a.taken:
-			return errTakenOver
+			return o.takenOver()
 		case <-o.dead:
 			return o.err
 		case <-draining:
@@ -165,7 +164,7 @@ func request(r received) (work, error) {
 	case r.message.GetEnd() != nil:
 		return work{end: true}, nil
 	case r.message.GetOpen() != nil:
-		return work{}, status.Error(codes.InvalidArgument, "a second open: a stream carries one drive; use another stream")
+		return work{}, refuse(leadlinev1.Reason_REASON_WRONG_MESSAGE, nil, "a second open: a stream carries one drive; use another stream")
 	}
-	return work{}, status.Error(codes.InvalidArgument, "an empty message: send a batch or end")
+	return work{}, refuse(leadlinev1.Reason_REASON_WRONG_MESSAGE, nil, "an empty message: send a batch or end")
 }

@@ -200,6 +200,27 @@ func replayed(t *testing.T, evs []sensor.Event) (hash string, released, times in
 	return s.Hash(), released, times
 }
 
+// where asks for one vehicle; why there is no answer comes as an error, with
+// the code that its reason has.
+func where(t *testing.T, conn *grpc.ClientConn, req *leadlinev1.WhereRequest) (*leadlinev1.WhereAnswer, error) {
+	t.Helper()
+	resp, err := leadlinev1.NewPositionServiceClient(conn).Where(limited(t), req)
+	if err != nil {
+		return nil, err
+	}
+	if len(resp.GetAnswers()) != 1 || resp.GetAnswers()[0].GetVehicle() != req.GetVehicles()[0] {
+		t.Fatalf("%d answers, first for %q", len(resp.GetAnswers()), resp.GetAnswers()[0].GetVehicle())
+	}
+	a := resp.GetAnswers()[0]
+	if f := a.GetFailure(); f != nil {
+		if a.GetPosterior() != nil {
+			t.Errorf("a posterior beside the failure %v", f)
+		}
+		return a, status.Error(reasonCodes[f.GetReason()], f.GetMessage())
+	}
+	return a, nil
+}
+
 // tally is a session without a filter, for tests of what is around it: each
 // event makes a posterior, and the hash is over all that enters one.
 type tally struct {
@@ -217,6 +238,7 @@ func (s *tally) Add(ev sensor.Event) ([]*summary.Posterior, error) {
 	return []*summary.Posterior{s.last}, nil
 }
 func (s *tally) Flush() []*summary.Posterior        { return nil }
+func (s *tally) Withdrawn() []sensor.Time           { return nil }
 func (s *tally) Latest() *summary.Posterior         { return s.last }
 func (s *tally) Counts() (accepted, refused uint64) { return s.count, 0 }
 func (s *tally) Hash() string                       { return hex.EncodeToString(s.hash.Sum(nil)) }

@@ -72,7 +72,7 @@ func TestOtherDrive(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	wantStatus(t, "the first stream", ends(first), codes.Aborted, "in place of this one")
+	wantStatus(t, "the first stream", ends(first), codes.Aborted, "in place of drive")
 	if _, err := f.Close(); err != nil {
 		t.Fatal(err)
 	}
@@ -111,7 +111,7 @@ func TestLimits(t *testing.T) {
 	if err != nil {
 		t.Fatalf("no room after a minute: %v", err)
 	}
-	_, err = leadlinev1.NewPositionServiceClient(conn).Where(limited(t), &leadlinev1.WhereRequest{Vehicles: []string{"b"}})
+	_, err = where(t, conn, &leadlinev1.WhereRequest{Vehicles: []string{"b"}})
 	wantStatus(t, "the vehicle that made room", err, codes.NotFound, `no vehicle "b"`)
 	if _, err := f.Close(); err != nil {
 		t.Error(err)

@@ -1,35 +1,37 @@
 package server
 
 import (
-	"fmt"
+	"context"
+	"errors"
 	"runtime/debug"
 	"sync"
+	"sync/atomic"
 	"time"
 
-	"google.golang.org/grpc/codes"
 	"google.golang.org/grpc/status"
 
-	"leadline/engine/session"
 	"leadline/engine/summary"
-	"leadline/engine/wire"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
 // owner runs one session in a goroutine of its own. Others reach it through
 // its channels.
 type owner struct {
-	srv     *Server
-	vehicle string
-	drive   string
-	header  *leadlinev1.DriveHeader
-	m       Map
+	srv      *Server
+	vehicle  string
+	drive    string
+	header   *leadlinev1.DriveHeader
+	m        Map
+	openedAt time.Time
 
-	attach    chan *attachment
-	questions chan *question
-	quit      chan struct{} // closed to stop it
-	once      sync.Once
-	dead      chan struct{} // closed when it has stopped, err set
-	err       error
+	attach chan *attachment
+	asks   chan func()
+	quit   chan struct{} // closed to stop it
+	once   sync.Once
+	dead   chan struct{} // closed when it has stopped, err set
+	err    error
+	// latest is the latest posterior, nil before the first. It is not changed.
+	latest atomic.Pointer[summary.Posterior]
 
 	// Guarded by srv.mu.
 	streams   int // that use it
@@ -44,6 +46,7 @@ type owner struct {
 	ended      bool
 	at         *attachment // the stream that feeds it, or nil
 	out        []item      // replies that wait; no batch is taken while any do
+	log        driveLog
 }
 
 // attachment joins a stream to an owner.
@@ -70,6 +73,26 @@ type item struct {
 	err     error
 }
 
+// newOwner makes an owner that the caller's stream uses; go run starts it.
+func newOwner(s *Server, req *leadlinev1.Open, m Map, sess Session) *owner {
+	o := &owner{
+		srv: s, vehicle: req.GetHeader().GetVehicle(), drive: req.GetDrive(), header: req.GetHeader(), m: m, sess: sess,
+		openedAt: s.cfg.Now(),
+		attach:   make(chan *attachment), asks: make(chan func()),
+		quit: make(chan struct{}), dead: make(chan struct{}),
+		streams: 1,
+	}
+	o.log = newDriveLog(s.cfg.Log, s.cfg.Now, o.vehicle, o.drive)
+	return o
+}
+
+// about says whose drive an error is about.
+func (o *owner) about() about { return about{"vehicle": o.vehicle, "drive": o.drive} }
+
+func (o *owner) takenOver() error {
+	return refuse(leadlinev1.Reason_REASON_TAKEN_OVER, o.about(), "another stream has opened drive %q of vehicle %q: only one may feed it", o.drive, o.vehicle)
+}
+
 // stop ends the owner after the batch that it is at. Streams get err, the
 // first one given.
 func (o *owner) stop(err error) {
@@ -83,11 +106,12 @@ func (o *owner) stop(err error) {
 func (o *owner) run() {
 	defer o.srv.ended.Done()
 	defer close(o.dead)
+	defer o.leave()
 	defer func() {
 		if r := recover(); r != nil {
 			// A session that broke its own rules is given up; the others go on.
-			o.srv.cfg.Log.Error("session failed", "vehicle", o.vehicle, "drive", o.drive, "panic", r, "stack", string(debug.Stack()))
-			o.stop(status.Errorf(codes.Internal, "the session of vehicle %q failed and was dropped: report it with the server's log", o.vehicle))
+			o.log.Error("session failed", "panic", r, "stack", string(debug.Stack()))
+			o.stop(refuse(leadlinev1.Reason_REASON_SESSION_FAILED, o.about(), "the session of vehicle %q failed and was dropped: report it with the server's log", o.vehicle))
 			o.srv.forget(o)
 		}
 	}()
@@ -111,8 +135,8 @@ func (o *owner) run() {
 			return
 		case a := <-o.attach:
 			o.take(a)
-		case q := <-o.questions:
-			q.answer <- o.answer(q)
+		case f := <-o.asks:
+			f()
 		case w := <-in:
 			o.work(w)
 		case out <- next:
@@ -127,23 +151,63 @@ func (o *owner) run() {
 	}
 }
 
+// leave tells those who follow and the log that the owner has stopped.
+func (o *owner) leave() {
+	why := status.Convert(o.err).Message()
+	if !o.ended {
+		o.farewell(false, "", why)
+	}
+	if !o.ended || !errors.Is(o.err, errStopping) {
+		accepted, refused := o.counts()
+		o.log.Info("drive dropped", "why", why, "ended", o.ended, "posteriors", o.posteriors, "accepted", accepted, "refused", refused, o.log.reasons())
+	}
+}
+
+// do runs f on the owner's goroutine and waits until it is done. The vehicle
+// waits meanwhile, so f must be short and must not wait for anything. After an
+// error f may be running still: leave alone what it writes.
+func (o *owner) do(ctx context.Context, f func()) error {
+	done := make(chan struct{})
+	ask := func() { f(); close(done) }
+	select {
+	case o.asks <- ask:
+	case <-o.dead:
+		return o.err
+	case <-ctx.Done():
+		return status.FromContextError(ctx.Err()).Err()
+	}
+	select {
+	case <-done:
+		return nil
+	case <-o.dead:
+		return o.err
+	case <-ctx.Done():
+		return status.FromContextError(ctx.Err()).Err()
+	}
+}
+
 // take makes a stream the one that feeds the session. What an earlier one had
 // in its queue was not acknowledged, and is sent again.
 func (o *owner) take(a *attachment) {
+	o.log.attached(o.sequence, o.at != nil)
 	if o.at != nil {
 		close(o.at.taken)
 	}
 	o.at, o.out = a, nil
-	opened := &leadlinev1.Opened{
+	o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Opened{Opened: &leadlinev1.Opened{
 		Sequence: o.sequence, MapFingerprint: o.m.Space.Fingerprint(),
 		MaxBatch:        uint32(o.srv.cfg.Limits.BatchMeasurements),
 		MaxMessageBytes: uint32(o.srv.cfg.Limits.MessageBytes),
-	}
-	o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Opened{Opened: opened}})
+		Version:         o.srv.cfg.Version,
+	}}})
 }
 
-// say queues a reply. At most those of one batch wait.
-func (o *owner) say(m *leadlinev1.FeedResponse) { o.out = append(o.out, item{message: m}) }
+// say queues a reply, if there is a stream. At most those of one batch wait.
+func (o *owner) say(m *leadlinev1.FeedResponse) {
+	if o.at != nil {
+		o.out = append(o.out, item{message: m})
+	}
+}
 
 // hangup ends the stream after the replies that wait.
 func (o *owner) hangup(err error) { o.out = append(o.out, item{last: true, err: err}) }
@@ -153,106 +217,9 @@ func (o *owner) work(w work) {
 	case w.hangup:
 		o.hangup(w.err)
 	case w.end:
-		o.end()
+		o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Closed{Closed: o.closing()}})
+		o.hangup(nil)
 	default:
 		o.batch(w.batch)
 	}
-}
-
-// batch takes the measurements of one batch, unless it is in already.
-func (o *owner) batch(b *leadlinev1.Batch) {
-	seq, most := b.GetSequence(), o.srv.cfg.Limits.BatchMeasurements
-	switch {
-	case seq == 0:
-		o.hangup(status.Error(codes.InvalidArgument, "batch: sequence is missing: count the batches of a drive from 1"))
-		return
-	case seq <= o.sequence:
-		o.receipt(&leadlinev1.Receipt{Sequence: o.sequence})
-		return
-	case seq != o.sequence+1:
-		o.hangup(status.Errorf(codes.FailedPrecondition, "batch %d came after batch %d: send %d next", seq, o.sequence, o.sequence+1))
-		return
-	case o.ended:
-		o.hangup(status.Errorf(codes.FailedPrecondition, "batch %d came after the end of drive %q: open another drive", seq, o.drive))
-		return
-	case len(b.GetMeasurements()) > most:
-		o.hangup(status.Errorf(codes.InvalidArgument, "batch %d holds %d measurements: at most %d; split it", seq, len(b.GetMeasurements()), most))
-		return
-	}
-	r := &leadlinev1.Receipt{Sequence: seq}
-	var released []*summary.Posterior
-	for i, m := range b.GetMeasurements() {
-		ps, err := o.measure(m)
-		released = append(released, ps...)
-		if err == nil {
-			r.Accepted++
-			continue
-		}
-		refused, ok := refusal(i, m, err)
-		if !ok {
-			panic(fmt.Sprintf("batch %d, measurement %d: %v", seq, i, err)) // only refusals are agreed
-		}
-		r.Refusals = append(r.Refusals, refused)
-	}
-	o.sequence = seq
-	o.publish(released)
-	o.receipt(r)
-}
-
-// measure takes one measurement.
-func (o *owner) measure(m *leadlinev1.SensorMeasurement) ([]*summary.Posterior, error) {
-	ev, err := wire.ToEvent(m)
-	if err != nil {
-		o.malformed++
-		return nil, &session.Refusal{Reason: session.Unusable, Detail: err.Error()}
-	}
-	return o.sess.Add(ev)
-}
-
-// publish counts posteriors and sends those that the stream wants.
-func (o *owner) publish(ps []*summary.Posterior) {
-	for _, p := range ps {
-		if !p.Revises { // those that do were counted when they were first
-			o.posteriors++
-		}
-	}
-	if len(ps) == 0 || o.at.reply == leadlinev1.Reply_REPLY_NONE {
-		return
-	}
-	if o.at.reply != leadlinev1.Reply_REPLY_EVERY {
-		ps = ps[len(ps)-1:]
-	}
-	for _, p := range ps {
-		o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Posterior{Posterior: o.message(p)}})
-	}
-}
-
-func (o *owner) receipt(r *leadlinev1.Receipt) {
-	o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Receipt{Receipt: r}})
-}
-
-// end flushes the session, once, and closes the stream.
-func (o *owner) end() {
-	if !o.ended {
-		o.publish(o.sess.Flush())
-		o.ended = true
-		o.srv.finish(o)
-	}
-	accepted, refused := o.sess.Counts()
-	c := &leadlinev1.Closed{
-		Posteriors: o.posteriors, PosteriorSha256: o.sess.Hash(),
-		Accepted: accepted, Refused: refused + o.malformed,
-	}
-	if p := o.sess.Latest(); p != nil {
-		c.Posterior = o.message(p)
-	}
-	o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Closed{Closed: c}})
-	o.hangup(nil)
-}
-
-// message converts a posterior as of now.
-func (o *owner) message(p *summary.Posterior) *leadlinev1.Posterior {
-	m := message(p, o.vehicle, o.m, o.srv.cfg.Now())
-	m.Counts.Refused += o.malformed
-	return m
 }

@@ -22,10 +22,9 @@ var statuses = map[summary.Status]leadlinev1.Status{
 	summary.Unsure:       leadlinev1.Status_STATUS_UNSURE,
 }
 
-// message converts a posterior, as of a time. onRoads says whether a cell's
-// index is that of a directed edge.
+// message converts a posterior, as of a time. Only one on roads has edges, and
+// the index of a cell there is that of an edge.
 func message(p *summary.Posterior, vehicle string, m Map, now time.Time) *leadlinev1.Posterior {
-	onRoads := m.onRoads()
 	out := &leadlinev1.Posterior{
 		Time:           wire.FromTime(sensor.Time(p.TimeNS)),
 		Vehicle:        vehicle,
@@ -49,7 +48,7 @@ func message(p *summary.Posterior, vehicle string, m Map, now time.Time) *leadli
 		GapS: p.GapS, Revises: p.Revises,
 		AsOf: timestamppb.New(now), AgeS: now.Sub(time.Unix(0, p.TimeNS)).Seconds(),
 	}
-	if onRoads {
+	if p.EdgeCount > 0 {
 		out.MostProbable.Edge = proto.Uint32(uint32(p.MostProbable.Index[0]))
 		out.MostProbable.AlongM = p.MostProbable.AlongM
 		out.MostProbable.Name = p.MostProbable.Name

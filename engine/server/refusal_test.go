@@ -95,7 +95,7 @@ func TestEveryReasonHasAWord(t *testing.T) {
 		session.Unusable, session.TooLate, session.TooEarly, session.Conflicting,
 		session.WrongSpace, session.Overfull,
 	} {
-		if reasons[r] == leadlinev1.Reason_REASON_UNSPECIFIED {
+		if measurementReasons[r] == leadlinev1.Reason_REASON_UNSPECIFIED {
 			t.Errorf("no word for %q", r)
 		}
 	}

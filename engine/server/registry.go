@@ -5,7 +5,6 @@ import (
 	"fmt"
 	"runtime/debug"
 
-	"google.golang.org/grpc/codes"
 	"google.golang.org/grpc/status"
 	"google.golang.org/protobuf/proto"
 
@@ -27,13 +26,16 @@ func (m Map) onRoads() bool {
 func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error) {
 	h, err := wire.ToHeader(req.GetHeader())
 	if err != nil {
-		return nil, status.Errorf(codes.InvalidArgument, "open: header: %v", err)
+		return nil, badField("open.header", "open: header: %v", err)
 	}
 	if req.GetDrive() == "" {
-		return nil, status.Error(codes.InvalidArgument, "open: drive is missing: give each drive a new name")
+		return nil, badField("open.drive", "open: drive is missing: give each drive a new name")
 	}
 	if err := wire.Name("drive", req.GetDrive()); err != nil {
-		return nil, status.Errorf(codes.InvalidArgument, "open: %v", err)
+		return nil, badField("open.drive", "open: %v", err)
+	}
+	if _, ok := leadlinev1.Reply_name[int32(req.GetReply())]; !ok {
+		return nil, badField("open.reply", "open: reply is %d: give one of those that feed.proto names", req.GetReply())
 	}
 	m, ok := s.cfg.find(h.Map)
 	if !ok {
@@ -41,7 +43,7 @@ func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error)
 		for _, m := range s.cfg.Maps {
 			names = append(names, m.Name)
 		}
-		return nil, status.Errorf(codes.NotFound, "open: header: there is no map %q here: known are %s", h.Map, known(names))
+		return nil, refuse(leadlinev1.Reason_REASON_UNKNOWN_MAP, about{"map": h.Map}, "open: header: there is no map %q here: known are %s", h.Map, known(names))
 	}
 	var suite *sensor.Suite
 	if h.Suite != "" {
@@ -50,7 +52,7 @@ func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error)
 			for n := range s.cfg.Suites {
 				names = append(names, n)
 			}
-			return nil, status.Errorf(codes.NotFound, "open: header: there is no suite %q here: known are %s", h.Suite, known(names))
+			return nil, refuse(leadlinev1.Reason_REASON_UNKNOWN_SUITE, about{"suite": h.Suite}, "open: header: there is no suite %q here: known are %s", h.Suite, known(names))
 		}
 	}
 	if o, err := s.resume(req); o != nil || err != nil {
@@ -61,7 +63,7 @@ func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error)
 	case <-ctx.Done():
 		return nil, status.FromContextError(ctx.Err()).Err()
 	case <-s.draining:
-		return nil, errDraining
+		return nil, errStopping
 	}
 	sess, err := s.newSession(session.Config{
 		Vehicle: h.Vehicle, Space: m.Space, Names: m.Names, Suite: suite,
@@ -79,12 +81,12 @@ func (s *Server) newSession(c session.Config) (sess Session, err error) {
 	defer func() {
 		if r := recover(); r != nil {
 			s.cfg.Log.Error("session cannot be made", "vehicle", c.Vehicle, "panic", r, "stack", string(debug.Stack()))
-			err = status.Errorf(codes.Internal, "open: the session of vehicle %q failed: report it with the server's log", c.Vehicle)
+			err = refuse(leadlinev1.Reason_REASON_SESSION_FAILED, about{"vehicle": c.Vehicle}, "open: the session of vehicle %q failed: report it with the server's log", c.Vehicle)
 		}
 	}()
 	sess, err = s.cfg.NewSession(c)
 	if err != nil {
-		return nil, status.Errorf(codes.InvalidArgument, "open: header: %v", err)
+		return nil, refuse(leadlinev1.Reason_REASON_BAD_START, about{"vehicle": c.Vehicle}, "open: header: %v", err)
 	}
 	return sess, nil
 }
@@ -110,7 +112,7 @@ func (s *Server) resume(req *leadlinev1.Open) (*owner, error) {
 
 func (s *Server) resumeLocked(req *leadlinev1.Open) (*owner, error) {
 	if s.closed {
-		return nil, errDraining
+		return nil, errStopping
 	}
 	o := s.owners[req.GetHeader().GetVehicle()]
 	switch {
@@ -118,12 +120,12 @@ func (s *Server) resumeLocked(req *leadlinev1.Open) (*owner, error) {
 		return nil, nil
 	case o.drive == req.GetDrive():
 		if !proto.Equal(o.header, req.GetHeader()) {
-			return nil, status.Errorf(codes.FailedPrecondition, "open: drive %q of vehicle %q was opened with another header: give the same one, or the drive another name", o.drive, o.vehicle)
+			return nil, refuse(leadlinev1.Reason_REASON_OTHER_HEADER, o.about(), "open: drive %q of vehicle %q was opened with another header: give the same one, or the drive another name", o.drive, o.vehicle)
 		}
 		o.streams++
 		return o, nil
 	case !o.finished && !req.GetReplace():
-		return nil, status.Errorf(codes.AlreadyExists, "open: vehicle %q has an unfinished drive %q: end that one, or set replace to give it up", o.vehicle, o.drive)
+		return nil, refuse(leadlinev1.Reason_REASON_OTHER_DRIVE, o.about(), "open: vehicle %q has an unfinished drive %q: end that one, or set replace to give it up", o.vehicle, o.drive)
 	}
 	return nil, nil
 }
@@ -137,21 +139,16 @@ func (s *Server) admit(req *leadlinev1.Open, m Map, sess Session) (*owner, error
 	}
 	vehicle := req.GetHeader().GetVehicle()
 	if old := s.owners[vehicle]; old != nil {
-		old.stop(errReplaced)
+		old.stop(refuse(leadlinev1.Reason_REASON_REPLACED, old.about(), "vehicle %q has opened drive %q in place of drive %q", vehicle, req.GetDrive(), old.drive))
 		delete(s.owners, vehicle)
 	} else if len(s.owners) >= s.cfg.Limits.Vehicles && !s.makeRoom() {
-		return nil, status.Errorf(codes.ResourceExhausted, "open: the server has its %d vehicles, all of them on a drive: try later, or raise the limit", s.cfg.Limits.Vehicles)
+		return nil, full("vehicles", s.cfg.Limits.Vehicles, "open: the server has its %d vehicles, all of them on a drive: try later, or raise the limit", s.cfg.Limits.Vehicles)
 	}
-	o := &owner{
-		srv: s, vehicle: vehicle, drive: req.GetDrive(), header: req.GetHeader(), m: m, sess: sess,
-		attach: make(chan *attachment), questions: make(chan *question),
-		quit: make(chan struct{}), dead: make(chan struct{}),
-		streams: 1,
-	}
+	o := newOwner(s, req, m, sess)
 	s.owners[vehicle] = o
 	s.ended.Add(1)
+	o.log.Info("drive opened", "map", m.Name, "suite", req.GetHeader().GetSuite())
 	go o.run()
-	s.cfg.Log.Info("drive opened", "vehicle", vehicle, "drive", o.drive, "map", m.Name)
 	return o, nil
 }
 
@@ -170,8 +167,7 @@ func (s *Server) makeRoom() bool {
 	if oldest == nil {
 		return false
 	}
-	s.cfg.Log.Info("idle vehicle dropped", "vehicle", oldest.vehicle, "drive", oldest.drive)
-	oldest.stop(errReplaced)
+	oldest.stop(refuse(leadlinev1.Reason_REASON_REPLACED, oldest.about(), "drive %q of vehicle %q was idle, and dropped to make room: open another drive", oldest.drive, oldest.vehicle))
 	delete(s.owners, oldest.vehicle)
 	return true
 }
@@ -187,9 +183,8 @@ func (s *Server) leave(o *owner) {
 // finish notes that a drive has ended.
 func (s *Server) finish(o *owner) {
 	s.mu.Lock()
+	defer s.mu.Unlock()
 	o.finished = true
-	s.mu.Unlock()
-	s.cfg.Log.Info("drive ended", "vehicle", o.vehicle, "drive", o.drive, "posteriors", o.posteriors)
 }
 
 // forget takes an owner out, if it is still the vehicle's.
@@ -211,7 +206,7 @@ func (s *Server) find(vehicle string) (*owner, error) {
 		if n := len(s.owners); n == 0 {
 			what += " and no other"
 		}
-		return nil, status.Error(codes.NotFound, what+": feed it first, under the same name")
+		return nil, refuse(leadlinev1.Reason_REASON_UNKNOWN_VEHICLE, about{"vehicle": vehicle}, "%s: feed it first, under the same name", what)
 	}
 	return o, nil
 }

@@ -25,12 +25,13 @@ import (
 type Server struct {
 	leadlinev1.UnimplementedPositionServiceServer
 
-	cfg      Config
-	grpc     *grpc.Server
-	web      *web.Server
-	health   *health.Server
-	openings chan struct{} // holds a token a session being made
-	streams  atomic.Int64
+	cfg         Config
+	grpc        *grpc.Server
+	web         *web.Server
+	health      *health.Server
+	openings    chan struct{} // holds a token a session being made
+	predictions chan struct{} // and one a belief being carried on
+	streams     atomic.Int64
 
 	draining chan struct{} // closed when streams should end
 	drain    sync.Once
@@ -58,17 +59,20 @@ func New(cfg Config) (*Server, error) {
 		cfg.Log = slog.New(slog.DiscardHandler)
 	}
 	s := &Server{
-		cfg:      cfg,
-		health:   health.NewServer(),
-		openings: make(chan struct{}, cfg.Limits.Openings),
-		draining: make(chan struct{}),
-		owners:   map[string]*owner{},
+		cfg:         cfg,
+		health:      health.NewServer(),
+		openings:    make(chan struct{}, cfg.Limits.Openings),
+		predictions: make(chan struct{}, cfg.Limits.Predictions),
+		draining:    make(chan struct{}),
+		owners:      map[string]*owner{},
 	}
 	s.grpc = grpc.NewServer(
 		grpc.MaxRecvMsgSize(cfg.Limits.MessageBytes),
 		grpc.MaxHeaderListSize(16<<10),
 		grpc.MaxConcurrentStreams(uint32(cfg.Limits.Streams)),
 		grpc.WaitForHandlers(true),
+		grpc.UnaryInterceptor(s.aroundUnary), grpc.StreamInterceptor(s.aroundStream),
+		grpc.UnknownServiceHandler(s.unknown),
 		// A half-open connection is found within 40 s; clients may look as
 		// often as every 10 s, also between streams.
 		grpc.KeepaliveParams(keepalive.ServerParameters{Time: 30 * time.Second, Timeout: 10 * time.Second}),
@@ -81,6 +85,7 @@ func New(cfg Config) (*Server, error) {
 	s.web, err = web.New(web.Config{
 		MessageBytes: cfg.Limits.MessageBytes, Connections: cfg.Limits.HTTPConnections,
 		Origins: cfg.Origins, Page: cfg.Page, Log: cfg.Log,
+		Unary: s.aroundUnary, Stream: s.aroundStream,
 	})
 	if err != nil {
 		return nil, err
@@ -148,7 +153,7 @@ func (s *Server) stopOwners() {
 	defer s.mu.Unlock()
 	s.closed = true
 	for _, o := range s.owners {
-		o.stop(errDraining)
+		o.stop(errStopping)
 	}
 	clear(s.owners)
 }

@@ -60,7 +60,7 @@ func TestOthersGoOn(t *testing.T) {
 		t.Fatal(err)
 	}
 	wantStatus(t, "the broken session", ends(broken), codes.Internal, `session of vehicle "broken" failed`)
-	_, err := leadlinev1.NewPositionServiceClient(conn).Where(limited(t), &leadlinev1.WhereRequest{Vehicles: []string{"broken"}})
+	_, err := where(t, conn, &leadlinev1.WhereRequest{Vehicles: []string{"broken"}})
 	wantStatus(t, "asking after the broken session", err, codes.NotFound, "no vehicle")
 	if closed, err := fed(limited(t), conn, client.Drive{Header: header("v")}, evs); err != nil || closed.GetPosteriorSha256() != want {
 		t.Errorf("a vehicle beside them: %v, %v", closed, err)
@@ -123,7 +123,7 @@ func TestManyVehicles(t *testing.T) {
 			if err != nil || closed.GetPosteriorSha256() != want {
 				t.Errorf("vehicle %d: %v, %v; want hash %s", i, closed, err, want)
 			}
-			where, err := leadlinev1.NewPositionServiceClient(conn).Where(ctx, &leadlinev1.WhereRequest{Vehicles: []string{name}})
+			where, err := where(t, conn, &leadlinev1.WhereRequest{Vehicles: []string{name}})
 			if err != nil || where.GetPosteriorSha256() != want || !where.GetEnded() {
 				t.Errorf("vehicle %d: where says %v, %v", i, where, err)
 			}

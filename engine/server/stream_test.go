@@ -215,7 +215,7 @@ func TestShutdownCutsOff(t *testing.T) {
 	}()
 	// Wait until the stream stands still: the replies fill the window.
 	for last := ""; ; time.Sleep(time.Second) {
-		r, err := leadlinev1.NewPositionServiceClient(conn).Where(limited(t), &leadlinev1.WhereRequest{Vehicles: []string{"v"}})
+		r, err := where(t, conn, &leadlinev1.WhereRequest{Vehicles: []string{"v"}})
 		if err == nil {
 			if now := r.GetPosterior().GetTime().String(); now == last {
 				break

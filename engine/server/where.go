@@ -2,139 +2,216 @@ package server
 
 import (
 	"context"
+	"fmt"
+	"runtime/debug"
+	"strconv"
+	"sync"
+	"sync/atomic"
 
-	"google.golang.org/grpc/codes"
 	"google.golang.org/grpc/status"
 	"google.golang.org/protobuf/proto"
 
 	"leadline/engine/geo"
+	"leadline/engine/sensor"
+	"leadline/engine/session"
 	"leadline/engine/wire"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
-// question is a request of Where on its way to an owner.
+// question is what a request of Where asks of each of its vehicles.
 type question struct {
 	fractions []float64
 	area      [][]geo.LonLat
-	risk      float64    // 0 for the suite's
-	answer    chan reply // of one, so that the owner never waits
+	risk      float64 // 0 for the suite's
+	toNow     bool
 }
 
-type reply struct {
-	message *leadlinev1.WhereAnswer
-	err     error
-}
+// askers is how many vehicles of one question are asked at once.
+const askers = 8
 
 // Where answers from the measurements so far: see the .proto file.
 func (s *Server) Where(ctx context.Context, req *leadlinev1.WhereRequest) (*leadlinev1.WhereResponse, error) {
-	resp := &leadlinev1.WhereResponse{}
-	for _, vehicle := range req.GetVehicles() {
-		q, err := s.question(req)
-		if err != nil {
-			return nil, err
-		}
-		a, err := s.ask(ctx, vehicle, q)
-		if err != nil {
-			return nil, err
-		}
-		resp.Answers = append(resp.Answers, a)
-	}
-	if len(resp.GetAnswers()) == 0 {
-		return nil, status.Error(codes.InvalidArgument, "where: vehicles is empty: give the names they are fed under")
-	}
-	return resp, nil
-}
-
-// ask puts a question to a vehicle's owner.
-func (s *Server) ask(ctx context.Context, vehicle string, q *question) (*leadlinev1.WhereAnswer, error) {
-	o, err := s.find(vehicle)
+	q, err := s.question(req)
 	if err != nil {
 		return nil, err
 	}
-	select {
-	case o.questions <- q:
-	case <-o.dead:
-		return nil, o.err
-	case <-ctx.Done():
+	vehicles := req.GetVehicles()
+	answers := make([]*leadlinev1.WhereAnswer, len(vehicles))
+	var next atomic.Int64
+	var wg sync.WaitGroup
+	for range min(askers, len(vehicles)) {
+		wg.Go(func() {
+			for i := next.Add(1) - 1; i < int64(len(vehicles)); i = next.Add(1) - 1 {
+				answers[i] = s.ask(ctx, vehicles[i], q)
+			}
+		})
+	}
+	wg.Wait()
+	if ctx.Err() != nil {
 		return nil, status.FromContextError(ctx.Err()).Err()
 	}
-	select {
-	case r := <-q.answer:
-		return r.message, r.err
-	case <-o.dead:
-		return nil, o.err
-	case <-ctx.Done():
-		return nil, status.FromContextError(ctx.Err()).Err()
-	}
+	return &leadlinev1.WhereResponse{Answers: answers, Version: s.cfg.Version}, nil
 }
 
 // question checks a request.
 func (s *Server) question(req *leadlinev1.WhereRequest) (*question, error) {
-	q := &question{fractions: req.GetRegionFractions(), answer: make(chan reply, 1)}
+	tooMany := func(field string, n, most int) error {
+		return refuse(leadlinev1.Reason_REASON_BAD_FIELD, about{"field": "where." + field, "limit": field, "most": strconv.Itoa(most)},
+			"where: %d %s: at most %d; ask in several calls", n, field, most)
+	}
+	switch n, most := len(req.GetVehicles()), s.cfg.Limits.Questions; {
+	case n == 0:
+		return nil, badField("where.vehicles", "where: vehicles is empty: give the names that they are fed under")
+	case n > most:
+		return nil, tooMany("vehicles", n, most)
+	}
+	for i, v := range req.GetVehicles() {
+		if v == "" {
+			return nil, badField("where.vehicles", "where: vehicles[%d] is empty: give the name that it is fed under", i)
+		}
+		if err := wire.Name(fmt.Sprintf("vehicles[%d]", i), v); err != nil {
+			return nil, badField("where.vehicles", "where: %v", err)
+		}
+	}
+	q := &question{fractions: req.GetRegionFractions(), toNow: req.GetPredictToNow()}
 	if n, most := len(q.fractions), s.cfg.Limits.Regions; n > most {
-		return nil, status.Errorf(codes.InvalidArgument, "where: %d region_fractions: at most %d", n, most)
+		return nil, tooMany("region_fractions", n, most)
 	}
 	for _, f := range q.fractions {
 		if !(f > 0 && f < 1) {
-			return nil, status.Errorf(codes.InvalidArgument, "where: region fraction %v: it must be above 0 and below 1", f)
+			return nil, badField("where.region_fractions", "where: region_fractions: %v: it must be above 0 and below 1", f)
 		}
 	}
 	if req.GetArea() != nil {
 		var err error
 		if q.area, err = wire.Polygon(req.GetArea()); err != nil {
-			return nil, status.Errorf(codes.InvalidArgument, "where: area: %v", err)
+			return nil, badField("where.area", "where: area: %v", err)
 		}
 	}
 	if req.IntegrityRisk != nil {
 		if q.risk = req.GetIntegrityRisk(); !(q.risk > 0 && q.risk < 1) {
-			return nil, status.Errorf(codes.InvalidArgument, "where: integrity_risk %v: it must be above 0 and below 1", q.risk)
+			return nil, badField("where.integrity_risk", "where: integrity_risk %v: it must be above 0 and below 1", q.risk)
 		}
 	}
 	return q, nil
 }
 
+// ask puts a question to a vehicle; what goes wrong is its answer.
+func (s *Server) ask(ctx context.Context, vehicle string, q *question) *leadlinev1.WhereAnswer {
+	o, err := s.find(vehicle)
+	if err != nil {
+		return &leadlinev1.WhereAnswer{Vehicle: vehicle, Failure: failure(err)}
+	}
+	r := &reply{} // the owner may write it after an error
+	if err := o.do(ctx, func() { *r = o.answer(q) }); err != nil {
+		return &leadlinev1.WhereAnswer{Vehicle: vehicle, Drive: o.drive, Failure: failure(err)}
+	}
+	if r.ahead != nil {
+		r.message, r.err = s.toNow(ctx, o, r, q)
+	}
+	a := &leadlinev1.WhereAnswer{Vehicle: vehicle, Drive: o.drive, PosteriorSha256: r.hash, Ended: r.ended}
+	if r.err != nil {
+		a.Failure = failure(r.err)
+	} else {
+		a.Posterior = r.message
+	}
+	return a
+}
+
+// reply is what an owner says: a posterior, a belief that is to be carried on,
+// or why there is neither.
+type reply struct {
+	message   *leadlinev1.Posterior
+	ahead     *session.Ahead
+	malformed uint64
+	hash      string
+	ended     bool
+	err       error
+}
+
 // answer runs on the owner's goroutine.
 func (o *owner) answer(q *question) reply {
+	r := reply{hash: o.sess.Hash(), ended: o.ended, malformed: o.malformed}
 	p := o.sess.Latest()
 	if p == nil {
-		return reply{err: status.Errorf(codes.FailedPrecondition, "where: vehicle %q has no posterior yet: none of its times is complete; send more, or end the drive", o.vehicle)}
+		r.err = refuse(leadlinev1.Reason_REASON_NO_POSTERIOR, o.about(), "where: vehicle %q has no posterior yet: none of its times is complete; send more, or end the drive", o.vehicle)
+		return r
 	}
-	m := o.message(p)
-	if err := o.more(m, q); err != nil {
-		return reply{err: err}
+	if q.toNow && !o.ended {
+		f, ok := o.sess.(Foresight)
+		if !ok {
+			r.err = notAsked("predict_to_now")
+			return r
+		}
+		if r.ahead, r.err = f.Ahead(); r.err != nil {
+			r.err = refuse(leadlinev1.Reason_REASON_NO_POSTERIOR, o.about(), "where: vehicle %q: %v", o.vehicle, r.err)
+		}
+		return r
 	}
-	return reply{message: &leadlinev1.WhereAnswer{Vehicle: o.vehicle, Drive: o.drive, Posterior: m, PosteriorSha256: o.sess.Hash(), Ended: o.ended}}
+	r.message = o.message(p)
+	r.err = more(r.message, o.sess, q)
+	return r
+}
+
+// toNow carries a belief on to the present. It takes up to a second, and runs on
+// the caller's goroutine; few of them do at once.
+func (s *Server) toNow(ctx context.Context, o *owner, r *reply, q *question) (m *leadlinev1.Posterior, err error) {
+	select {
+	case s.predictions <- struct{}{}:
+		defer func() { <-s.predictions }()
+	case <-ctx.Done():
+		return nil, status.FromContextError(ctx.Err()).Err()
+	}
+	defer func() {
+		if p := recover(); p != nil {
+			s.cfg.Log.Error("belief cannot be carried on", "vehicle", o.vehicle, "drive", o.drive, "panic", p, "stack", string(debug.Stack()))
+			err = refuse(leadlinev1.Reason_REASON_SESSION_FAILED, o.about(), "where: predict_to_now failed for vehicle %q: report it with the server's log, and leave it out", o.vehicle)
+		}
+	}()
+	now, last := s.cfg.Now(), r.ahead.Time()
+	p, err := r.ahead.Carry(sensor.Time(now.UnixNano()))
+	if err != nil {
+		return nil, refuse(leadlinev1.Reason_REASON_NO_POSTERIOR, o.about(), "where: predict_to_now: vehicle %q: %v: leave predict_to_now out", o.vehicle, err)
+	}
+	m = message(p, o.vehicle, o.m, now)
+	m.Counts.Refused += r.malformed
+	m.PredictedS = sensor.Time(p.TimeNS).Seconds(last)
+	return m, more(m, r.ahead, q)
 }
 
 // more adds what a question asks beyond the posterior.
-func (o *owner) more(m *leadlinev1.Posterior, q *question) error {
+func more(m *leadlinev1.Posterior, of any, q *question) error {
 	if len(q.fractions) == 0 && q.area == nil && q.risk == 0 {
 		return nil
 	}
-	a, ok := o.sess.(Asker)
+	a, ok := of.(Asker)
 	if !ok {
-		return status.Error(codes.Unimplemented, "where: this server answers with the posterior alone: leave out region_fractions, area and integrity_risk")
+		return notAsked("region_fractions, area and integrity_risk")
 	}
 	for _, f := range q.fractions {
 		r, err := a.Region(f)
 		if err != nil {
-			return status.Errorf(codes.InvalidArgument, "where: region fraction %v: %v", f, err)
+			return badField("where.region_fractions", "where: region_fractions: %v: %v", f, err)
 		}
 		m.Regions = append(m.Regions, region(r))
 	}
 	if q.area != nil {
 		in, err := a.Inside(q.area)
 		if err != nil {
-			return status.Errorf(codes.InvalidArgument, "where: area: %v", err)
+			return badField("where.area", "where: area: %v", err)
 		}
 		m.AreaProbability = proto.Float64(in)
 	}
 	if q.risk != 0 {
 		p, err := a.Protection(q.risk)
 		if err != nil {
-			return status.Errorf(codes.InvalidArgument, "where: integrity_risk: %v", err)
+			return badField("where.integrity_risk", "where: integrity_risk: %v", err)
 		}
 		m.Protection = protection(p)
 	}
 	return nil
+}
+
+func notAsked(fields string) error {
+	return refuse(leadlinev1.Reason_REASON_NOT_OFFERED, about{"field": "where." + fields}, "where: this server answers with the posterior alone: leave out %s", fields)
 }

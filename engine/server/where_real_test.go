@@ -24,15 +24,14 @@ func TestQuestionsOfASession(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	ask := leadlinev1.NewPositionServiceClient(conn)
-	r, err := ask.Where(limited(t), &leadlinev1.WhereRequest{Vehicles: []string{"v"}, RegionFractions: []float64{0.9}, IntegrityRisk: proto.Float64(0.01)})
+	r, err := where(t, conn, &leadlinev1.WhereRequest{Vehicles: []string{"v"}, RegionFractions: []float64{0.9}, IntegrityRisk: proto.Float64(0.01)})
 	if err != nil {
 		t.Fatal(err)
 	}
 	p := r.GetPosterior()
 	sum := 0.0
 	for _, polygon := range p.GetRegions()[0].GetPolygons() {
-		in, err := ask.Where(limited(t), &leadlinev1.WhereRequest{Vehicles: []string{"v"}, Area: polygon})
+		in, err := where(t, conn, &leadlinev1.WhereRequest{Vehicles: []string{"v"}, Area: polygon})
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -49,12 +48,12 @@ func TestQuestionsOfASession(t *testing.T) {
 		t.Errorf("protection radius at 1 %%: %v m, 99 %% radius %v m", a, b)
 	}
 	own := closed.GetPosterior().GetProtection()
-	again, err := ask.Where(limited(t), &leadlinev1.WhereRequest{Vehicles: []string{"v"}, IntegrityRisk: proto.Float64(own.GetRisk())})
+	again, err := where(t, conn, &leadlinev1.WhereRequest{Vehicles: []string{"v"}, IntegrityRisk: proto.Float64(own.GetRisk())})
 	if err != nil || !proto.Equal(again.GetPosterior().GetProtection(), own) {
 		t.Errorf("protection at the suite's risk %v, %v; the posterior's %v", again.GetPosterior().GetProtection(), err, own)
 	}
 	all := wire.FromPolygon([][]geo.LonLat{{geo.FromDegrees(4.8, 52.9), geo.FromDegrees(5.2, 52.9), geo.FromDegrees(5.2, 53.1), geo.FromDegrees(4.8, 53.1)}})
-	in, err := ask.Where(limited(t), &leadlinev1.WhereRequest{Vehicles: []string{"v"}, Area: all})
+	in, err := where(t, conn, &leadlinev1.WhereRequest{Vehicles: []string{"v"}, Area: all})
 	if err != nil || math.Abs(in.GetPosterior().GetAreaProbability()-1) > 1e-6 {
 		t.Errorf("probability of everywhere: %v, %v", in.GetPosterior().GetAreaProbability(), err)
 	}

@@ -50,8 +50,8 @@ func TestQuestions(t *testing.T) {
 		t.Fatal(err)
 	}
 	corner, risk := geo.FromDegrees(0.25, 53), 1e-5
-	r, err := leadlinev1.NewPositionServiceClient(conn).Where(limited(t), &leadlinev1.WhereRequest{
-		Vehicle: "v", RegionFractions: []float64{0.6, 0.9}, IntegrityRisk: proto.Float64(risk),
+	r, err := where(t, conn, &leadlinev1.WhereRequest{
+		Vehicles: []string{"v"}, RegionFractions: []float64{0.6, 0.9}, IntegrityRisk: proto.Float64(risk),
 		Area: wire.FromPolygon([][]geo.LonLat{{middle, corner, geo.FromDegrees(5, 54)}}),
 	})
 	if err != nil {
@@ -75,15 +75,15 @@ func TestQuestions(t *testing.T) {
 	if r.GetPosteriorSha256() != tallied(evs) || !r.GetEnded() {
 		t.Errorf("answer: %v", r)
 	}
-	r, err = leadlinev1.NewPositionServiceClient(conn).Where(limited(t), &leadlinev1.WhereRequest{Vehicles: []string{"v"}, IntegrityRisk: proto.Float64(1e-9)})
+	r, err = where(t, conn, &leadlinev1.WhereRequest{Vehicles: []string{"v"}, IntegrityRisk: proto.Float64(1e-9)})
 	if err != nil || r.GetPosterior().Protection.RadiusM != nil || r.GetPosterior().GetProtection().GetUnboundedReason() == "" {
 		t.Errorf("an unbounded radius: %v, %v", r.GetPosterior().GetProtection(), err)
 	}
 	if r.GetPosterior().AreaProbability != nil || r.GetPosterior().Regions != nil {
 		t.Errorf("what was not asked: %v", r)
 	}
-	_, err = leadlinev1.NewPositionServiceClient(conn).Where(limited(t), &leadlinev1.WhereRequest{Vehicles: []string{"v"}, RegionFractions: []float64{0.5}})
-	wantStatus(t, "an answer that fails", err, codes.InvalidArgument, "region fraction 0.5: not today")
+	_, err = where(t, conn, &leadlinev1.WhereRequest{Vehicles: []string{"v"}, RegionFractions: []float64{0.5}})
+	wantStatus(t, "an answer that fails", err, codes.InvalidArgument, "region_fractions: 0.5: not today")
 }
 
 // TestBadQuestions proves that each wrong question has its own answer.
@@ -99,18 +99,20 @@ func TestBadQuestions(t *testing.T) {
 		code  codes.Code
 		words string
 	}{
-		{&leadlinev1.WhereRequest{}, codes.InvalidArgument, "vehicle is missing"},
+		{&leadlinev1.WhereRequest{}, codes.InvalidArgument, "vehicles is empty"},
 		{&leadlinev1.WhereRequest{Vehicles: []string{"ghost"}}, codes.NotFound, `no vehicle "ghost" here`},
-		{&leadlinev1.WhereRequest{Vehicles: []string{strings.Repeat("x", 1<<20)}}, codes.NotFound, "no vehicle"},
+		{&leadlinev1.WhereRequest{Vehicles: []string{strings.Repeat("x", 1<<20)}}, codes.InvalidArgument, "vehicles[0] is 1048576 bytes long"},
+		{&leadlinev1.WhereRequest{Vehicles: []string{""}}, codes.InvalidArgument, "vehicles[0] is empty"},
+		{&leadlinev1.WhereRequest{Vehicles: make([]string, 101)}, codes.InvalidArgument, "101 vehicles: at most 100"},
 		{&leadlinev1.WhereRequest{Vehicles: []string{"silent"}}, codes.FailedPrecondition, "no posterior yet"},
-		{&leadlinev1.WhereRequest{Vehicles: []string{"v"}, RegionFractions: []float64{0.5, 1}}, codes.InvalidArgument, "region fraction 1: it must be above 0 and below 1"},
-		{&leadlinev1.WhereRequest{Vehicles: []string{"v"}, RegionFractions: []float64{math.NaN()}}, codes.InvalidArgument, "region fraction NaN"},
+		{&leadlinev1.WhereRequest{Vehicles: []string{"v"}, RegionFractions: []float64{0.5, 1}}, codes.InvalidArgument, "region_fractions: 1: it must be above 0 and below 1"},
+		{&leadlinev1.WhereRequest{Vehicles: []string{"v"}, RegionFractions: []float64{math.NaN()}}, codes.InvalidArgument, "region_fractions: NaN"},
 		{&leadlinev1.WhereRequest{Vehicles: []string{"v"}, RegionFractions: make([]float64, 9)}, codes.InvalidArgument, "9 region_fractions: at most 8"},
 		{&leadlinev1.WhereRequest{Vehicles: []string{"v"}, IntegrityRisk: proto.Float64(0)}, codes.InvalidArgument, "integrity_risk 0"},
 		{&leadlinev1.WhereRequest{Vehicles: []string{"v"}, Area: &leadlinev1.Polygon{}}, codes.InvalidArgument, "area: no ring"},
 		{&leadlinev1.WhereRequest{Vehicles: []string{"v"}, Area: &leadlinev1.Polygon{Rings: []*leadlinev1.Ring{{Points: []*leadlinev1.Position{corner, corner}}}}}, codes.InvalidArgument, "rings[0] has 2 points"},
 	} {
-		_, err := leadlinev1.NewPositionServiceClient(conn).Where(limited(t), c.req)
+		_, err := where(t, conn, c.req)
 		wantStatus(t, fmt.Sprintf("%.100v", c.req), err, c.code, c.words)
 		if len(err.Error()) > 2000 {
 			t.Errorf("%.100v: an answer of %d bytes", c.req, len(err.Error()))

@@ -119,6 +119,7 @@ type Session struct {
 	// hold is the suite's hold_s, still for how long a standstill speaks.
 	hold, still                    sensor.Time
 	wideSize, hugeSize, maxWaiting int // the constants, less in tests
+	maxCarried                     float64
 
 	state  state
 	snaps  []snapshot

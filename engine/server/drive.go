@@ -1,0 +1,183 @@
+package server
+
+import (
+	"fmt"
+	"slices"
+	"strconv"
+
+	"google.golang.org/protobuf/types/known/timestamppb"
+
+	"leadline/engine/sensor"
+	"leadline/engine/session"
+	"leadline/engine/summary"
+	"leadline/engine/wire"
+	leadlinev1 "leadline/proto/leadline/v1"
+)
+
+// Everything here runs on the owner's goroutine.
+
+// batch takes the measurements of one batch, unless it is in already.
+func (o *owner) batch(b *leadlinev1.Batch) {
+	if b.GetSequence() > 0 && b.GetSequence() <= o.sequence {
+		o.receipt(&leadlinev1.Receipt{Sequence: o.sequence})
+		return
+	}
+	if err := o.wrongBatch(b); err != nil {
+		o.hangup(err)
+		return
+	}
+	r := &leadlinev1.Receipt{Sequence: b.GetSequence()}
+	var n news
+	for i, m := range b.GetMeasurements() {
+		ps, err := o.measure(m)
+		if err != nil {
+			refused, ok := refusal(i, m, err)
+			if !ok {
+				panic(fmt.Sprintf("batch %d, measurement %d: %v", b.GetSequence(), i, err)) // only refusals are agreed
+			}
+			o.log.refused(refused)
+			r.Refusals = append(r.Refusals, refused)
+			continue
+		}
+		r.Accepted++
+		o.publish(&n, ps)
+	}
+	o.sequence = b.GetSequence()
+	o.tell(&n)
+	o.receipt(r)
+}
+
+// wrongBatch says what is wrong with a batch as a whole.
+func (o *owner) wrongBatch(b *leadlinev1.Batch) error {
+	seq, n, most := b.GetSequence(), len(b.GetMeasurements()), o.srv.cfg.Limits.BatchMeasurements
+	switch {
+	case seq == 0:
+		return badField("batch.sequence", "batch: sequence is missing: count the batches of a drive from 1")
+	case seq != o.sequence+1:
+		return refuse(leadlinev1.Reason_REASON_OUT_OF_ORDER, o.about(), "batch %d came after batch %d: send %d next", seq, o.sequence, o.sequence+1)
+	case o.ended:
+		return refuse(leadlinev1.Reason_REASON_DRIVE_ENDED, o.about(), "batch %d came after the end of drive %q: open another drive", seq, o.drive)
+	case n > most:
+		return refuse(leadlinev1.Reason_REASON_BAD_FIELD, about{"field": "batch.measurements", "limit": "batch", "most": strconv.Itoa(most)},
+			"batch %d holds %d measurements: at most %d; split it", seq, n, most)
+	}
+	return nil
+}
+
+// measure takes one measurement.
+func (o *owner) measure(m *leadlinev1.SensorMeasurement) ([]*summary.Posterior, error) {
+	ev, err := wire.ToEvent(m)
+	if err != nil {
+		o.malformed++
+		return nil, &session.Refusal{Reason: session.Unusable, Detail: err.Error()}
+	}
+	return o.sess.Add(ev)
+}
+
+// news is what the stream is still to be told, where it does not want every
+// posterior.
+type news struct {
+	last      *summary.Posterior // the last one that was released and holds
+	withdrawn []sensor.Time
+}
+
+// publish passes on what the session has just released, and what it took back
+// with that: to those who follow at once, to the stream as it wants.
+func (o *owner) publish(n *news, ps []*summary.Posterior) {
+	gone := o.sess.Withdrawn()
+	if len(ps) == 0 && len(gone) == 0 {
+		return
+	}
+	for _, p := range ps {
+		if !p.Revises { // those that do were counted when they were first
+			o.posteriors++
+		}
+	}
+	o.posteriors -= uint64(len(gone))
+	o.latest.Store(o.sess.Latest())
+	o.log.now(o.sess.Latest())
+	o.told(ps, gone)
+	if o.at == nil || o.at.reply == leadlinev1.Reply_REPLY_NONE {
+		return
+	}
+	if o.at.reply == leadlinev1.Reply_REPLY_EVERY {
+		for _, p := range ps {
+			o.sayPosterior(p)
+		}
+		o.sayWithdrawn(gone)
+		return
+	}
+	for _, p := range ps {
+		n.last = p
+		n.withdrawn = slices.DeleteFunc(n.withdrawn, func(t sensor.Time) bool { return int64(t) == p.TimeNS })
+	}
+	n.withdrawn = append(n.withdrawn, gone...)
+	if n.last != nil && slices.Contains(n.withdrawn, sensor.Time(n.last.TimeNS)) {
+		n.last = o.sess.Latest()
+	}
+}
+
+// tell says to the stream what publish has kept.
+func (o *owner) tell(n *news) {
+	o.sayWithdrawn(n.withdrawn)
+	if n.last != nil {
+		o.sayPosterior(n.last)
+	}
+}
+
+func (o *owner) sayPosterior(p *summary.Posterior) {
+	o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Posterior{Posterior: o.message(p)}})
+}
+
+func (o *owner) sayWithdrawn(times []sensor.Time) {
+	if len(times) > 0 {
+		o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Withdrawn{Withdrawn: withdrawn(times)}})
+	}
+}
+
+func withdrawn(times []sensor.Time) *leadlinev1.Withdrawn {
+	w := &leadlinev1.Withdrawn{Times: make([]*timestamppb.Timestamp, len(times))}
+	for i, t := range times {
+		w.Times[i] = wire.FromTime(t)
+	}
+	return w
+}
+
+func (o *owner) receipt(r *leadlinev1.Receipt) {
+	o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Receipt{Receipt: r}})
+}
+
+// counts are the measurements accepted and refused.
+func (o *owner) counts() (accepted, refused uint64) {
+	accepted, refused = o.sess.Counts()
+	return accepted, refused + o.malformed
+}
+
+// closing ends the drive, once, and says how it ended.
+func (o *owner) closing() *leadlinev1.Closed {
+	accepted, refused := o.counts()
+	if !o.ended {
+		var n news
+		o.publish(&n, o.sess.Flush())
+		o.tell(&n)
+		o.ended = true
+		o.srv.finish(o)
+		o.farewell(true, o.sess.Hash(), "the drive has ended")
+		o.log.Info("drive ended", "posteriors", o.posteriors, "accepted", accepted, "refused", refused, o.log.reasons())
+	}
+	c := &leadlinev1.Closed{
+		Posteriors: o.posteriors, PosteriorSha256: o.sess.Hash(),
+		Accepted: accepted, Refused: refused, Version: o.srv.cfg.Version,
+	}
+	if p := o.sess.Latest(); p != nil {
+		c.Posterior = o.message(p)
+	}
+	return c
+}
+
+// message converts a posterior as of now.
+func (o *owner) message(p *summary.Posterior) *leadlinev1.Posterior {
+	m := message(p, o.vehicle, o.m, o.srv.cfg.Now())
+	m.Counts.Refused += o.malformed
+	return m
+}
