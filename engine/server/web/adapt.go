@@ -127,11 +127,11 @@ func inward(err error) error {
 	case errors.Is(err, io.EOF):
 		return io.EOF
 	}
-	st := status.New(codes.Code(connect.CodeOf(err)), err.Error())
 	var ce *connect.Error
-	if errors.As(err, &ce) {
-		st = status.New(st.Code(), strings.ReplaceAll(ce.Message(), "\u00a0", " ")) // protobuf varies its spaces
+	if !errors.As(err, &ce) {
+		return status.FromContextError(err).Err()
 	}
+	st := status.New(codes.Code(ce.Code()), strings.ReplaceAll(ce.Message(), "\u00a0", " ")) // protobuf varies its spaces
 	if st.Code() == codes.InvalidArgument {
 		st = because(st, leadlinev1.Reason_REASON_BAD_FIELD)
 	}

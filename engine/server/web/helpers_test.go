@@ -107,7 +107,7 @@ type both struct {
 
 // both starts one that ends with the test, which proves then that nothing is
 // left.
-func serveBoth(t *testing.T, cfg Config) *both {
+func serveBoth(t testing.TB, cfg Config) *both {
 	t.Helper()
 	before := goleak.IgnoreCurrent()
 	b := &both{

@@ -33,7 +33,7 @@ type body struct {
 
 func (b *body) Read(p []byte) (int, error) {
 	n, err := b.ReadCloser.Read(p)
-	if err == io.EOF { //nolint:errorlint // a body's end is bare
+	if err == io.EOF {
 		_ = b.c.SetReadDeadline(time.Time{})
 	}
 	return n, err

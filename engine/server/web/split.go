@@ -60,7 +60,7 @@ func (s *splitter) run() {
 		c, err := s.l.Accept()
 		if err != nil {
 			<-s.undecided
-			if passing, ok := err.(interface{ Temporary() bool }); ok && passing.Temporary() { //nolint:errorlint // a listener's own error, never wrapped
+			if passing, ok := err.(interface{ Temporary() bool }); ok && passing.Temporary() {
 				time.Sleep(10 * time.Millisecond)
 				continue
 			}
