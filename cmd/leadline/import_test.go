@@ -1,12 +1,13 @@
 package main
 
 import (
+	"encoding/csv"
 	"fmt"
-	"io"
 	"math"
 	"os"
 	"path/filepath"
 	"slices"
+	"strconv"
 	"strings"
 	"testing"
 	"time"
@@ -14,54 +15,74 @@ import (
 	"leadline/engine/drivefile"
 	"leadline/engine/geo"
 	"leadline/engine/sensor"
-	"leadline/engine/summary"
 	"leadline/fixtures/drives"
 	"leadline/fixtures/sim"
 	"leadline/terrain"
 	"leadline/terrain/heightfile"
 )
 
-// posteriors replays a drive.
-func posteriors(t *testing.T, drivePath, mapPath, suite string) []*summary.Posterior {
+// row is a posterior as a track's table has it.
+type row struct {
+	time, status string
+	mean         geo.LonLat
+	sigmaM       float64
+}
+
+// replayed replays a drive and reads the track.
+func replayed(t *testing.T, drivePath, mapPath string, more ...string) (rows []row) {
 	t.Helper()
-	maps := map[string]*mapFile{}
-	run, err := (&replayOptions{mapPath: mapPath, suite: suite}).replay(io.Discard, maps, drivePath)
-	for _, m := range maps {
-		defer m.Close()
-	}
+	out := t.TempDir()
+	good(t, append([]string{"replay", drivePath, "--map", mapPath, "--out", out}, more...)...)
+	f, err := os.Open(filepath.Join(out, setting, driveName(drivePath), "track.csv"))
 	if err != nil {
 		t.Fatal(err)
 	}
-	if run.result.Refused > 0 {
-		t.Fatalf("%s: %d refused, first %v", drivePath, run.result.Refused, run.result.Refusals[0])
+	defer f.Close()
+	table, err := csv.NewReader(f).ReadAll()
+	if err != nil {
+		t.Fatal(err)
 	}
-	return run.result.Posteriors
-}
-
-// agree compares the mean positions of two replays in units of their own
-// standard deviation.
-func agree(t *testing.T, a, b []*summary.Posterior, shareOfSigma float64) {
-	t.Helper()
-	if len(a) != len(b) || len(a) < 50 {
-		t.Fatalf("%d and %d posteriors", len(a), len(b))
-	}
-	worst, worstM := 0.0, 0.0
-	for i, p := range a {
-		q := b[i]
-		if p.TimeNS != q.TimeNS || p.Status != q.Status {
-			t.Fatalf("posterior %d: %v at %d, and %v at %d", i, p.Status, p.TimeNS, q.Status, q.TimeNS)
-		}
-		d, _, err := geo.WGS84.Distance(p.Mean, q.Mean)
+	number := func(line []string, name string) float64 {
+		v, err := strconv.ParseFloat(line[slices.Index(table[0], name)], 64)
 		if err != nil {
 			t.Fatal(err)
 		}
-		sigma := math.Sqrt(p.Cov.EE + p.Cov.NN)
-		worst, worstM = math.Max(worst, d/sigma), math.Max(worstM, d)
+		return v
 	}
-	t.Logf("%d posteriors, farthest apart %.2g m, %.2g of sigma", len(a), worstM, worst)
-	if worst > shareOfSigma {
-		t.Errorf("they are %v of sigma apart, want at most %v", worst, shareOfSigma)
+	for _, line := range table[1:] {
+		rows = append(rows, row{
+			line[0], line[1], geo.FromDegrees(number(line, "mean_lon_deg"), number(line, "mean_lat_deg")),
+			math.Sqrt(number(line, "cov_ee_m2") + number(line, "cov_nn_m2")),
+		})
 	}
+	return rows
+}
+
+// agree compares the mean positions of two replays: they may be a share of
+// their own standard deviation apart, and what rounding to 1e-8° in the tables
+// makes of it.
+func agree(t *testing.T, a, b []row, shareOfSigma float64) {
+	t.Helper()
+	const rounding = 1.6e-3 // m: a step of 1.11 mm, half of it in each of two tables and both axes
+	if len(a) != len(b) || len(a) < 50 {
+		t.Fatalf("%d and %d posteriors", len(a), len(b))
+	}
+	worst := 0.0
+	for i, p := range a {
+		q := b[i]
+		if p.time != q.time || p.status != q.status {
+			t.Fatalf("posterior %d: %s at %s, and %s at %s", i, p.status, p.time, q.status, q.time)
+		}
+		d, _, err := geo.WGS84.Distance(p.mean, q.mean)
+		if err != nil {
+			t.Fatal(err)
+		}
+		worst = math.Max(worst, d)
+		if d > rounding+shareOfSigma*p.sigmaM {
+			t.Fatalf("at %s they are %v m apart, sigma is %v m", p.time, d, p.sigmaM)
+		}
+	}
+	t.Logf("%d posteriors, farthest apart %.2g m", len(a), worst)
 }
 
 // logOf writes a car's drive as a logger would: a row for each time, the
@@ -72,12 +93,12 @@ func logOf(t *testing.T, d *drivefile.Drive) string {
 	var b strings.Builder
 	b.WriteString("Time;Odometer [km];Odo sigma [mm];Yaw [rad];Yaw sigma [deg];Lat;Lon\n")
 	comma := func(v float64) string { return strings.Replace(fmt.Sprintf("%.15f", v), ".", ",", 1) }
-	type row struct{ odo, odoSigma, yaw, yawSigma, lat, lon string }
-	rows := map[sensor.Time]*row{}
+	type cells struct{ odo, odoSigma, yaw, yawSigma, lat, lon string }
+	rows := map[sensor.Time]*cells{}
 	var times []sensor.Time
-	at := func(ts sensor.Time) *row {
+	at := func(ts sensor.Time) *cells {
 		if rows[ts] == nil {
-			rows[ts] = &row{}
+			rows[ts] = &cells{}
 			times = append(times, ts)
 		}
 		return rows[ts]
@@ -170,7 +191,7 @@ func TestImportTable(t *testing.T) {
 	}
 	// Readings have fifteen digits after the point: km to 1e-12 m, at 12345.6 km
 	// doubles are 1.8e-9 m apart.
-	agree(t, posteriors(t, drivePath, mapPath, ""), posteriors(t, imported, mapPath, ""), 1e-6)
+	agree(t, replayed(t, drivePath, mapPath), replayed(t, imported, mapPath), 1e-6)
 }
 
 // seaFloor compiles an invented sea floor of 40 m with banks of some metres.
@@ -318,26 +339,25 @@ func TestImportSentences(t *testing.T) {
 	}
 	// What is measured moves by δ ≤ 2.6e-5 σ each. In a linear problem the mean
 	// then moves by at most √(Σ(δ/σ)²) of its own sigma: 5e-4 for 360 of them.
-	agree(t, posteriors(t, drivePath, mapPath, suite), posteriors(t, imported, mapPath, suite), 5e-4)
+	agree(t, replayed(t, drivePath, mapPath, "--suite", suite), replayed(t, imported, mapPath, "--suite", suite), 5e-4)
 
 	// Dead reckoning: the same craft without a heading to estimate. Its water
 	// stands still.
 	reckoned := filepath.Join(dir, "reckoned"+drivefile.Suffix)
 	still := writeText(t, filepath.Join(dir, "still.yaml"), surveySentences+"reckon: {current_sigma_mps: 0.02, current_correlation_s: 10, sensor: dr}\n")
 	good(t, "import", log, "-o", reckoned, "--vehicle", "craft", "--start", start, "--sentences", still)
-	log0 := writeText(t, filepath.Join(dir, "reckoned.yaml"), reckonedSuite)
-	ps := posteriors(t, reckoned, mapPath, log0)
+	own := writeText(t, filepath.Join(dir, "reckoned.yaml"), reckonedSuite)
+	ps := replayed(t, reckoned, mapPath, "--suite", own)
 	end := ps[len(ps)-1]
 	truth := d.Truths[len(d.Truths)-1]
-	off, _, err := geo.WGS84.Distance(end.Mean, truth.Position)
+	off, _, err := geo.WGS84.Distance(end.mean, truth.Position)
 	if err != nil {
 		t.Fatal(err)
 	}
-	sigma := math.Sqrt(end.Cov.EE + end.Cov.NN)
-	t.Logf("reckoned: %.1f m from the truth, sigma %.1f m", off, sigma)
+	t.Logf("reckoned: %.1f m from the truth, sigma %.1f m", off, end.sigmaM)
 	// The start's sigma was 30 m along each axis.
-	if !(off < 4*sigma) || !(sigma < 10) {
-		t.Errorf("%.1f m from the truth with a sigma of %.1f m", off, sigma)
+	if !(off < 4*end.sigmaM) || !(end.sigmaM < 10) {
+		t.Errorf("%.1f m from the truth with a sigma of %.1f m", off, end.sigmaM)
 	}
 }
 
