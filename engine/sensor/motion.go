@@ -27,6 +27,8 @@ type Motion struct {
 	GapAgeS     float64
 	HasVelocity bool
 	VelocityMPS [2]float64
+	// Bend is how the way before From bends.
+	Bend Bend
 
 	sources []source
 }
@@ -62,7 +64,7 @@ func (m *Motion) Reset(from, to Time) {
 	}
 	clear(m.sources)
 	m.sources = m.sources[:0]
-	m.From, m.To, m.GapAgeS, m.HasVelocity = from, to, 0, false
+	m.From, m.To, m.GapAgeS, m.HasVelocity, m.Bend = from, to, 0, false, Bend{}
 }
 
 // Seconds is the length of the segment.
@@ -186,6 +188,15 @@ func (m *Motion) TravelledM() float64 {
 		return hypot(g.east, g.north)
 	}
 	return hypot(b.forward, b.right)
+}
+
+// BendAfter is how the way bends at To; after a gap it is not known to.
+func (m *Motion) BendAfter() Bend {
+	b := m.body()
+	if b.covered < m.To-m.From {
+		return Bend{}
+	}
+	return m.Bend.after(b.forward, b.turn, b.turnVar)
 }
 
 // GapS is how much of the segment, in seconds, no sensor covers.

@@ -91,7 +91,7 @@ func (m *Motion) roadStep(s *filter.Step, b body, g ground, frame geo.Frame, pos
 		return g.covered
 	}
 	s.Add[0] = b.forward
-	s.Q[0] += b.forwardVar + m.Suite.Vehicle.mapVar(b.forward, b.turn, b.turnVar)
+	s.Q[0] += b.forwardVar + m.Suite.Vehicle.mapVar(b.forward, m.Bend.turned(b.forward, b.turn, b.turnVar))
 	if scale >= 0 && b.scaled != 0 {
 		s.SetF(0, scale, b.scaled)
 	}
@@ -100,12 +100,10 @@ func (m *Motion) roadStep(s *filter.Step, b body, g ground, frame geo.Frame, pos
 
 // mapVar is the variance with which a way driven differs from the way on the
 // map, m²: by what the map's error stretches it, and by what a driver cuts off
-// or goes out of the way at corners. The turn counts as far as it is more than
-// the gyro's noise (two sigma), so that a standing vehicle gains nothing.
-func (v Vehicle) mapVar(forward, turn, turnVar float64) float64 {
+// or goes out of the way at corners, in proportion to the angle turned.
+func (v Vehicle) mapVar(forward, turned float64) float64 {
 	stretch := float64(v.StretchMPerSqrtM * v.StretchMPerSqrtM * math.Abs(forward))
-	bend := math.Max(0, math.Abs(turn)-2*math.Sqrt(turnVar))
-	return stretch + float64(v.CornerSigmaM*v.CornerSigmaM*bend)/(math.Pi/2)
+	return stretch + float64(v.CornerSigmaM*v.CornerSigmaM*turned)/(math.Pi/2)
 }
 
 // inFrame turns a true displacement into the frame at a point; scaled says

@@ -101,7 +101,7 @@ const standstillS = 1.0
 func (s *Session) gather(from, to sensor.Time) {
 	m, st := &s.motion, &s.state
 	m.Reset(from, to)
-	m.GapAgeS, m.HasVelocity, m.VelocityMPS = st.gapAgeS, st.hasVelocity, st.velocity
+	m.GapAgeS, m.HasVelocity, m.VelocityMPS, m.Bend = st.gapAgeS, st.hasVelocity, st.velocity, st.bend
 	s.spans(from, to, m.Add)
 }
 
@@ -114,6 +114,7 @@ func (s *Session) predict() {
 	}
 	s.spread(step)
 	s.watched(Change{From: m.From, Time: m.To})
+	st.bend = m.BendAfter()
 	travelledM := m.TravelledM()
 	st.odometerM += travelledM
 	if gap := m.GapS(); gap > 0 {

@@ -20,6 +20,7 @@ type state struct {
 	gapAgeS     float64
 	hasVelocity bool
 	velocity    [2]float64
+	bend        sensor.Bend
 	speed       summary.Speed
 	odometerM   float64 // distance measured since the start
 	// Since the last posterior: evidence (at most maxEvidence), gaps, when
