@@ -104,6 +104,9 @@ func nothing(w http.ResponseWriter, r *http.Request) {
 // client's. The others say that they go over gRPC.
 func (s *Server) RegisterService(d *grpc.ServiceDesc, impl any) {
 	calls := connect.NewServer()
+	calls.SetUnknownHandler(func(_ context.Context, spec connect.Spec, _ connect.ServerStream) error {
+		return outward(notOffered("there is no call " + spec.Procedure + " here").Err())
+	})
 	add := func(method string, kind connect.StreamType, f connect.ServerFunc) {
 		calls.Register(connect.Method{Spec: connect.Spec{Procedure: "/" + d.ServiceName + "/" + method, StreamType: kind}, Handler: f})
 	}
@@ -113,7 +116,7 @@ func (s *Server) RegisterService(d *grpc.ServiceDesc, impl any) {
 	for _, m := range d.Streams {
 		if m.ClientStreams {
 			s.mux.HandleFunc("POST /"+d.ServiceName+"/"+m.StreamName, func(w http.ResponseWriter, r *http.Request) {
-				s.refuse(w, r, because(status.New(codes.Unimplemented, m.StreamName+" is not offered over HTTP/1.1, since the client sends a stream: call it by gRPC, on the same port"), leadlinev1.Reason_REASON_NOT_OFFERED))
+				s.refuse(w, r, notOffered(m.StreamName+" is not offered over HTTP/1.1, since the client sends a stream: call it by gRPC, on the same port"))
 			})
 			continue
 		}
@@ -123,6 +126,10 @@ func (s *Server) RegisterService(d *grpc.ServiceDesc, impl any) {
 	json.MarshalOptions.UseProtoNames, json.MarshalOptions.EmitUnpopulated = true, true
 	json.UnmarshalOptions.DiscardUnknown = false // a misspelt field is an error
 	connecthttp.Mount(s.mux, calls, connecthttp.WithCodecs(connectproto.NewBinaryCodec(), json), connecthttp.WithReadMaxBytes(s.cfg.MessageBytes))
+}
+
+func notOffered(message string) *status.Status {
+	return because(status.New(codes.Unimplemented, message), leadlinev1.Reason_REASON_NOT_OFFERED)
 }
 
 // refuse answers a request that does not reach a handler.

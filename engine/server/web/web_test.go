@@ -63,7 +63,7 @@ func TestCurl(t *testing.T) {
 		{"a call over a stream", post(b.url("Feed"), `{}`), "501", "unimplemented", "call it by gRPC, on the same port", "NOT_OFFERED"},
 		{"another", post(b.url("UploadMap"), `{}`), "501", "unimplemented", "call it by gRPC", "NOT_OFFERED"},
 		{"a call that this server does not have", post(b.url("ListMaps"), `{}`), "501", "unimplemented", "ListMaps", ""},
-		{"a call that nobody has", post(b.url("Whence"), `{}`), "501", "unimplemented", "", ""},
+		{"a call that nobody has", post(b.url("Whence"), `{}`), "501", "unimplemented", "there is no call /leadline.v1.PositionService/Whence here", "NOT_OFFERED"},
 		{"too little time", post(where, `{"vehicles":["late"]}`, "-H", "Connect-Timeout-Ms: 50"), "504", "deadline_exceeded", "", ""},
 	} {
 		status, body := curl(t, c.args...)
