@@ -99,6 +99,27 @@ func (b *Belief) Moments(space Space, w *Workspace) (mass float64, mean geo.Poin
 	return mass, mean.Add(o), cov
 }
 
+// Moment returns mean and variance of a nuisance that is no angle; false where
+// the belief has none of the name.
+func (b *Belief) Moment(name string) (mean, variance float64, ok bool) {
+	d, k := Index(b.Quantities, name), len(b.Quantities)
+	if d < b.Dim || b.Quantities[d].Angular {
+		return 0, 0, false
+	}
+	p := k * (k + 1) / 2
+	total := 0.0
+	for i, m := range b.Mass {
+		total += m
+		mean += float64(m * b.Mean[i*k+d])
+	}
+	mean /= total
+	for i, m := range b.Mass {
+		x := b.Mean[i*k+d] - mean
+		variance += float64(m * (b.Cov[i*p+Packed(d, d)] + float64(x*x)))
+	}
+	return mean, variance / total, true
+}
+
 // Clone returns a copy that shares nothing that changes.
 func (b *Belief) Clone() *Belief {
 	c := *b

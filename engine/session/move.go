@@ -7,7 +7,6 @@ import (
 
 	"leadline/engine/filter"
 	"leadline/engine/sensor"
-	"leadline/engine/summary"
 )
 
 // roadSensor names the comparison of the vehicle's heading with the road's in
@@ -120,7 +119,7 @@ func (s *Session) predict() {
 	if gap := m.GapS(); gap > 0 {
 		st.gapS += gap
 		st.gapAgeS += gap
-		st.speed = summary.Speed{}
+		st.pace.stretches = st.pace.stretches[:0]
 	} else {
 		st.gapAgeS = 0
 		dt := m.Seconds()
@@ -128,8 +127,11 @@ func (s *Session) predict() {
 		for i := range s.dim {
 			st.velocity[i] = step.Add[i] / dt
 		}
-		st.speed = summary.Speed{Known: true, MPS: travelledM / dt, SigmaMPS: math.Sqrt(step.Q[0]) / dt}
+		if p, ok := m.Pace(); ok {
+			st.pace.add(p)
+		}
 	}
+	st.speed = st.pace.speed(st.belief, s.suite.Vehicle.MaxAccelMPS2)
 	if l := s.followsRoad(travelledM); l != nil {
 		s.weigh(sensor.Event{Time: m.To, Sensor: roadSensor, Measurement: sensor.Turn{}}, l)
 	}

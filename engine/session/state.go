@@ -21,7 +21,8 @@ type state struct {
 	hasVelocity bool
 	velocity    [2]float64
 	bend        sensor.Bend
-	speed       summary.Speed
+	pace        pace
+	speed       summary.Speed // now: of pace, or what a sensor of speed said
 	odometerM   float64 // distance measured since the start
 	// Since the last posterior: evidence (at most maxEvidence), gaps, when
 	// that was, and whether there has been a step.
@@ -45,6 +46,7 @@ func (st *state) clone() state {
 	c.belief = st.belief.Clone()
 	c.previous = slices.Clone(st.previous)
 	c.evidence = slices.Clone(st.evidence)
+	c.pace.stretches = slices.Clone(st.pace.stretches)
 	return c
 }
 
