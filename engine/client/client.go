@@ -62,11 +62,15 @@ type Drive struct {
 	// unacknowledged; 0 is 16.
 	Batch, Window int
 
-	// Reply says which posteriors are wanted. OnPosterior and OnRefusal, if
-	// set, are called one at a time, from another goroutine, and must not call
-	// the feed; a slow one slows the feed down.
+	// Reply says which posteriors are wanted. Those that OnWithdrawn gets the
+	// times of hold no more; with REPLY_EVERY it is one order for both, and a
+	// client that drops what is withdrawn and replaces what is revised ends
+	// with the posteriors that Closed has the hash of. OnPosterior, OnWithdrawn
+	// and OnRefusal, if set, are called one at a time, from another goroutine,
+	// and must not call the feed; a slow one slows the feed down.
 	Reply       leadlinev1.Reply
 	OnPosterior func(*leadlinev1.Posterior)
+	OnWithdrawn func(*leadlinev1.Withdrawn)
 	OnRefusal   func(*leadlinev1.Refusal)
 }
 
@@ -273,6 +277,10 @@ func (f *Feed) receive() {
 		case *leadlinev1.FeedResponse_Posterior:
 			if f.drive.OnPosterior != nil {
 				f.drive.OnPosterior(k.Posterior)
+			}
+		case *leadlinev1.FeedResponse_Withdrawn:
+			if f.drive.OnWithdrawn != nil {
+				f.drive.OnWithdrawn(k.Withdrawn)
 			}
 		case *leadlinev1.FeedResponse_Closed:
 			f.closed = k.Closed

@@ -8,6 +8,8 @@ import (
 	"hash"
 	"math/rand/v2"
 	"net"
+	"os"
+	"regexp"
 	"strings"
 	"testing"
 	"time"
@@ -265,4 +267,21 @@ func fed(ctx context.Context, conn *grpc.ClientConn, d client.Drive, evs []senso
 		}
 	}
 	return f.Close()
+}
+
+// farOff is on no map here.
+var farOff = geo.FromDegrees(-70, 10)
+
+// reasonComment is what reason.proto says about a reason.
+func reasonComment(t *testing.T, r leadlinev1.Reason) string {
+	t.Helper()
+	text, err := os.ReadFile("../../proto/leadline/v1/reason.proto")
+	if err != nil {
+		t.Fatal(err)
+	}
+	m := regexp.MustCompile(`((?:  //[^\n]*\n)+)  ` + r.String() + ` = `).FindSubmatch(text)
+	if m == nil {
+		t.Fatalf("reason.proto does not explain %v", r)
+	}
+	return strings.Join(strings.Fields(strings.ReplaceAll(string(m[1]), "//", "")), " ")
 }

@@ -69,7 +69,9 @@ func New(cfg Config) (*Server, error) {
 	s.grpc = grpc.NewServer(
 		grpc.MaxRecvMsgSize(cfg.Limits.MessageBytes),
 		grpc.MaxHeaderListSize(16<<10),
-		grpc.MaxConcurrentStreams(uint32(cfg.Limits.Streams)),
+		// Of one connection: beyond, its calls wait unanswered, so that all
+		// the streams there may be, and some calls, must go through one.
+		grpc.MaxConcurrentStreams(uint32(cfg.Limits.Streams+1000)),
 		grpc.WaitForHandlers(true),
 		grpc.UnaryInterceptor(s.aroundUnary), grpc.StreamInterceptor(s.aroundStream),
 		grpc.UnknownServiceHandler(s.unknown),
