@@ -51,7 +51,7 @@ fetch-arrow:
 
 WEB = engine/client/web
 fetch-clients:
-	npm ci --silent --no-audit --no-fund --prefix $(WEB)
+	npm ci --include=dev --silent --no-audit --no-fund --prefix $(WEB)
 
 # generate writes the Go code of the API beside its .proto files, and the
 # messages and types of the clients in other languages.
