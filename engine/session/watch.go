@@ -1,6 +1,9 @@
 package session
 
-import "leadline/engine/sensor"
+import (
+	"leadline/engine/sensor"
+	"leadline/engine/summary"
+)
 
 // Change is one thing that happened to the belief: it moved, or it was
 // weighed.
@@ -23,6 +26,12 @@ type Change struct {
 // nothing else with the session. What a late event has computed again is seen
 // again.
 func (s *Session) Watch(f func(Change)) { s.watch = f }
+
+// Summarize makes the posterior of the present belief, for who watches it, and
+// changes nothing else.
+func (s *Session) Summarize(sum *summary.Summarizer, dst *summary.Posterior) error {
+	return s.read(sum, dst)
+}
 
 func (s *Session) watched(c Change) {
 	if s.watch != nil {

@@ -1,0 +1,146 @@
+package diagnose
+
+import (
+	"errors"
+	"slices"
+	"time"
+
+	"leadline/engine/drivefile"
+	"leadline/engine/geo"
+	"leadline/engine/sensor"
+	"leadline/engine/session"
+	"leadline/engine/study/replay"
+)
+
+// Options say how a diagnosis is made. The zero value is useful.
+type Options struct {
+	// OpeningS is how much of the drive is tried again, seconds; 0: 300.
+	OpeningS float64
+	// MaxEvents cuts the opening short; 0: 20 000.
+	MaxEvents int
+	// MaxCells bounds the belief; 0: 10 000, or what the configuration says
+	// if that is less.
+	MaxCells int
+	// Grids are norths besides the true one that directions may count from.
+	Grids []Grid
+	// Each runs f for 0 to n-1, at once if it likes; nil: one after the other.
+	// No result depends on it.
+	Each func(n int, f func(i int))
+	// Progress, if set, is called now and then, and at the end with done =
+	// total; the steps do not take equally long.
+	Progress func(done, total int)
+}
+
+// Grid is a map grid and its convergence at a place: by how much its north is
+// clockwise of the true one.
+type Grid struct {
+	Name        string
+	Convergence func(geo.LonLat) float64
+}
+
+// Report is what a diagnosis finds.
+type Report struct {
+	OpeningS     float64 `json:"opening_s"`
+	Measurements int     `json:"measurements"`
+	// Tried is how many mistakes were tried, each value that was looked for
+	// counted; NeededNats the gain from which one is named (see Needed).
+	Tried      int     `json:"tried"`
+	NeededNats float64 `json:"needed_nats"`
+	// Fits is how the log fits as it stands.
+	Fits       []Fit       `json:"fits"`
+	Candidates []Candidate `json:"candidates"` // best first
+	// BaseGivenUpAfter is when the log as it stands was given up, being far
+	// behind: gains are then at least what they say.
+	BaseGivenUpAfter *float64 `json:"log_given_up_after_s"`
+	Verdict          string   `json:"verdict"`
+	TookS            float64  `json:"took_s"`
+}
+
+// Candidate is a mistake that was tried.
+type Candidate struct {
+	Mistake string  `json:"mistake"`
+	Sensor  string  `json:"sensor,omitempty"`
+	Value   float64 `json:"value,omitempty"`
+	Unit    string  `json:"unit,omitempty"`
+	// GainNats is by how much the log evidence of the opening's measurements
+	// grows if it is undone; of one that was given up, until then.
+	GainNats     float64  `json:"gain_nats"`
+	GivenUpAfter *float64 `json:"given_up_after_s"`
+	// Bad lists the sensors that fit badly although it is undone.
+	Bad    []string `json:"bad,omitempty"`
+	Named  bool     `json:"named"`
+	Remedy string   `json:"remedy,omitempty"`
+
+	mistake *Mistake
+}
+
+// Text names the mistake with its sensor and value.
+func (k *Candidate) Text() string { return k.mistake.String() }
+
+// ErrNoMeasurements is returned by Run for a drive that holds none.
+var ErrNoMeasurements = errors.New("the drive holds no measurement")
+
+// Run tries the opening of a drive again with each usual mistake undone. An
+// error is about the configuration or the drive as a whole.
+func Run(d *drivefile.Drive, c session.Config, o Options) (*Report, error) {
+	began := time.Now()
+	k, err := newCourse(d, c, o)
+	if err != nil {
+		return nil, err
+	}
+	r := &Report{Measurements: len(k.events), OpeningS: k.rounds[len(k.rounds)-1].Seconds(k.start)}
+	if err := k.tryAll(r, o); err != nil {
+		return nil, err
+	}
+	r.TookS = time.Since(began).Seconds()
+	return r, nil
+}
+
+func newCourse(d *drivefile.Drive, c session.Config, o Options) (*course, error) {
+	events := replay.Ordered(d.Events)
+	if len(events) == 0 {
+		return nil, ErrNoMeasurements
+	}
+	c.Vehicle, c.Start = d.Header.Vehicle, replay.Start(d.Header.Start)
+	if o.OpeningS == 0 {
+		o.OpeningS = 300
+	}
+	if o.MaxEvents == 0 {
+		o.MaxEvents = 20_000
+	}
+	if o.MaxCells == 0 {
+		o.MaxCells = 10_000
+		if c.MaxCells > 0 {
+			o.MaxCells = min(o.MaxCells, c.MaxCells)
+		}
+	}
+	c.MaxCells = o.MaxCells
+	k := &course{config: c, each: o.Each, start: events[0].Time, tick: func() {}}
+	if k.each == nil {
+		k.each = func(n int, f func(int)) {
+			for i := range n {
+				f(i)
+			}
+		}
+	}
+	k.suite, _ = suiteOf(c)
+	n := min(len(events), o.MaxEvents)
+	for n > 1 && events[n-1].Time.Seconds(k.start) > o.OpeningS {
+		n--
+	}
+	k.events = events[:n:n]
+	for i := range k.events {
+		if ev := &k.events[i]; ev.Sensor == "" {
+			ev.Sensor = ev.Measurement.Kind()
+		}
+	}
+	k.voices = voices(k.events)
+	end := k.events[n-1].Time
+	for _, part := range []sensor.Time{32, 16, 8, 4, 2, 1} {
+		if t := k.start + (end-k.start)/part; len(k.rounds) == 0 || t > k.rounds[len(k.rounds)-1] {
+			k.rounds = append(k.rounds, t)
+		}
+	}
+	k.rounds = slices.Compact(k.rounds)
+	return k, nil
+}

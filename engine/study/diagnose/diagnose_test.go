@@ -1,0 +1,187 @@
+package diagnose
+
+import (
+	"fmt"
+	"math"
+	"reflect"
+	"slices"
+	"strings"
+	"testing"
+
+	"leadline/fixtures/accept"
+)
+
+// diagnosed plants a mistake in a scene and tries to find it.
+func diagnosed(t testing.TB, p *plant, seed uint64) *Report {
+	t.Helper()
+	s := p.scene(t, seed)
+	if p.spoil != nil {
+		for i := range s.drive.Events {
+			p.spoil(&s.drive.Events[i])
+		}
+	}
+	o := Options{MaxCells: 1000, Each: accept.Each}
+	if !accept.Long() {
+		o.OpeningS = p.shortS
+	}
+	if p.grid != nil {
+		o.Grids = []Grid{*p.grid}
+	}
+	r, err := Run(s.drive, s.config, o)
+	return must(t, r, err)
+}
+
+// found reports whether the planted mistake is among those that a report
+// names, the first of them, and what else it names.
+func (p *plant) found(r *Report) bool {
+	for _, k := range r.Candidates {
+		if k.Named && k.Mistake == p.want && math.Abs(k.Value-p.value) <= p.within {
+			return true
+		}
+	}
+	return false
+}
+
+func named(r *Report) (out []string) {
+	for _, k := range r.Candidates {
+		if k.Named {
+			out = append(out, fmt.Sprintf("%s %+.0f", k.Text(), k.GainNats))
+		}
+	}
+	return out
+}
+
+// TestFindsPlantedMistakes plants each usual mistake in simulated logs. The
+// diagnosis knows the log and the map alone. In the short form some mistakes
+// twice each; in the long one all ten times, of which nine must be named.
+func TestFindsPlantedMistakes(t *testing.T) {
+	seeds, least := 2, 2
+	if accept.Long() {
+		seeds, least = 10, 9
+	}
+	for i := range plants {
+		p := &plants[i]
+		if !accept.Long() && p.shortS == 0 {
+			continue
+		}
+		t.Run(p.name, func(t *testing.T) {
+			hits, alone := 0, 0
+			for seed := uint64(1); seed <= uint64(seeds); seed++ {
+				r := diagnosed(t, p, seed)
+				names := named(r)
+				if p.found(r) {
+					hits++
+					if len(names) == 1 {
+						alone++
+					}
+				} else {
+					t.Logf("seed %d: %s", seed, r.Verdict)
+				}
+				if accept.Long() {
+					t.Logf("seed %d: %s", seed, strings.Join(names, "; "))
+				}
+			}
+			t.Logf("%-32s named in %d of %d, alone in %d", p.name, hits, seeds, alone)
+			if hits < least {
+				t.Errorf("named in %d of %d, want %d", hits, seeds, least)
+			}
+		})
+	}
+}
+
+// TestNamesNothingUnspoiled: in logs without a mistake none is named.
+func TestNamesNothingUnspoiled(t *testing.T) {
+	seeds := 1
+	if accept.Long() {
+		seeds = 20
+	}
+	for i := range unspoiled {
+		p := &unspoiled[i]
+		if !accept.Long() && p.shortS == 0 {
+			continue
+		}
+		t.Run(p.name, func(t *testing.T) {
+			wrong, most := 0, math.Inf(-1)
+			for seed := uint64(1); seed <= uint64(seeds); seed++ {
+				r := diagnosed(t, p, seed)
+				for _, k := range r.Candidates {
+					if k.GivenUpAfter == nil {
+						most = math.Max(most, k.GainNats)
+					}
+				}
+				if names := named(r); len(names) > 0 {
+					wrong++
+					t.Logf("seed %d: %s", seed, strings.Join(names, "; "))
+				}
+				for _, f := range r.Fits {
+					if f.Bad {
+						t.Errorf("seed %d: %s fits badly", seed, f.Sensor)
+					}
+				}
+			}
+			t.Logf("%-32s something named in %d of %d, greatest gain %.1f nats", p.name, wrong, seeds, most)
+			if wrong > seeds/20 {
+				t.Errorf("something is named in %d of %d", wrong, seeds)
+			}
+		})
+	}
+}
+
+// TestSameInAnyOrder: what runs at once, and in which order, changes nothing.
+func TestSameInAnyOrder(t *testing.T) {
+	p := plants[slices.IndexFunc(plants, func(p plant) bool { return strings.Contains(p.name, "swapped") })]
+	var reports []*Report
+	for _, each := range []func(int, func(int)){
+		nil,
+		accept.Each,
+		func(n int, f func(int)) {
+			for i := n - 1; i >= 0; i-- {
+				f(i)
+			}
+		},
+	} {
+		s := p.scene(t, 3)
+		for i := range s.drive.Events {
+			p.spoil(&s.drive.Events[i])
+		}
+		r, err := Run(s.drive, s.config, Options{MaxCells: 1000, OpeningS: 30, Each: each})
+		must(t, r, err)
+		r.TookS = 0
+		for i := range r.Candidates {
+			r.Candidates[i].mistake = nil
+		}
+		reports = append(reports, r)
+	}
+	if len(reports[0].Candidates) < 20 {
+		t.Fatalf("only %d candidates", len(reports[0].Candidates))
+	}
+	for _, r := range reports[1:] {
+		if !reflect.DeepEqual(r, reports[0]) {
+			t.Error("the report depends on the order of the runs")
+		}
+	}
+}
+
+// TestNoMeasurements: a drive without any is an error.
+func TestNoMeasurements(t *testing.T) {
+	s := flyer(t, 1)
+	s.drive.Events = nil
+	if _, err := Run(s.drive, s.config, Options{}); err == nil {
+		t.Error("a drive without measurements is diagnosed")
+	}
+	if _, err := Explain(s.drive, s.config, 0, 1); err == nil {
+		t.Error("a drive without measurements is explained")
+	}
+}
+
+// TestNeeded: by Bayes' rule, the gain that is needed leaves odds of 99 to 1
+// for a mistake against none, whatever the number tried.
+func TestNeeded(t *testing.T) {
+	for _, tried := range []int{1, 8, 377, 10000} {
+		prior := 0.01 / float64(tried) // of each mistake
+		odds := prior * math.Exp(needed(tried)) / 0.99
+		if math.Abs(odds-99) > 1e-6 {
+			t.Errorf("%d tried: the odds are %v, want 99", tried, odds)
+		}
+	}
+}

@@ -1,0 +1,148 @@
+package diagnose
+
+import (
+	"math"
+	"math/rand/v2"
+	"testing"
+
+	"leadline/engine/geo"
+	"leadline/engine/sensor"
+	"leadline/fixtures/sim"
+)
+
+// plant is a mistake that is put into a log, and what the diagnosis should
+// call it.
+type plant struct {
+	name  string
+	scene func(t testing.TB, seed uint64) *scene
+	// spoil changes a measurement or its time.
+	spoil         func(ev *sensor.Event)
+	want          string
+	value, within float64 // of what has a value
+	grid          *Grid   // a grid that is known
+	// shortS is the opening that the short form tries again; 0: it does not.
+	shortS float64
+}
+
+// each changes the measurements of a kind.
+func each[M sensor.Measurement](edit func(m *M)) func(*sensor.Event) {
+	return func(ev *sensor.Event) {
+		if m, ok := ev.Measurement.(M); ok {
+			edit(&m)
+			ev.Measurement = m
+		}
+	}
+}
+
+// late makes a sensor's times late.
+func late(name string, s float64) func(*sensor.Event) {
+	return func(ev *sensor.Event) {
+		if ev.Sensor != name {
+			return
+		}
+		by := sensor.Time(s * 1e9)
+		ev.Time += by
+		switch m := ev.Measurement.(type) {
+		case sensor.Turn:
+			m.Since += by
+			ev.Measurement = m
+		case sensor.Travel:
+			m.Since += by
+			ev.Measurement = m
+		case sensor.Displacement:
+			m.Since += by
+			ev.Measurement = m
+		}
+	}
+}
+
+// rotate turns east and north as axes that are turned clockwise by deg see
+// them.
+func rotate(e, n, deg float64) (float64, float64) {
+	s, c := math.Sincos(geo.Rad(deg))
+	return e*c - n*s, e*s + n*c
+}
+
+// plainCar, flyer and surveyor are the quick scenes.
+func plainCar(t testing.TB, seed uint64) *scene {
+	return car(t, seed, 150, func(o *sim.CarOptions) { o.Odometer.Hz, o.Gyro.Hz = 1, 1 })
+}
+
+// fittedCar has a compass, a barometer and fixes, too.
+func fittedCar(t testing.TB, seed uint64) *scene {
+	s := car(t, seed, 120, func(o *sim.CarOptions) {
+		o.Odometer.Hz, o.Gyro.Hz = 1, 1
+		o.Fixes = sim.Fixes{Hz: 1, SigmaM: 4, OutlierProbability: 0.02, OutlierSigmaM: 60}
+	})
+	rng := rand.New(rand.NewPCG(seed, 5))
+	for _, tr := range s.sim.Truth {
+		s.drive.Events = append(s.drive.Events, sensor.Event{
+			Time: sensor.Time(tr.TimeNs), Sensor: "compass", Number: uint64(tr.TimeNs),
+			Measurement: sensor.HeadingFix{HeadingRad: geo.Rad(tr.HeadingDeg + 3*rng.NormFloat64()), SigmaRad: geo.Rad(3)},
+		})
+	}
+	return s
+}
+
+func flyer(t testing.TB, seed uint64) *scene { return flight(t, seed, 50, nil) }
+
+// agile turns every few seconds, with good instruments: a second shows.
+func agile(t testing.TB, seed uint64) *scene {
+	return flight(t, seed, 60, func(o *sim.FlightOptions) { o.LegM, o.TurnDegS, o.OdometryMRootMin, o.AltimeterM = 300, 10, 2, 1 })
+}
+
+func surveyor(t testing.TB, seed uint64) *scene { return survey(t, seed, 120) }
+
+var plants = []plant{
+	{name: "car: gyro reversed", scene: plainCar, spoil: each(func(m *sensor.Turn) { m.AngleRad *= -1 }), want: "turn sign reversed", shortS: 150},
+	{name: "car: distances ×10", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 10 }), want: "distances ten times too large"},
+	{name: "car: distances ×0.1", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 0.1 }), want: "distances ten times too small", shortS: 120},
+	{name: "car: travel reversed", scene: fittedCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= -1 }), want: "forward and backward reversed"},
+	{name: "car: fixes 1 s late", scene: fittedCar, spoil: late("fix", 1), want: "times late", value: 1, shortS: 60},
+	{name: "car: compass 1 s early", scene: fittedCar, spoil: late("compass", -1), want: "times early", value: -1},
+	{name: "car: fixes swapped", scene: fittedCar, spoil: each(func(m *sensor.Fix) { m.Position.Lon, m.Position.Lat = m.Position.Lat, m.Position.Lon }), want: "longitude and latitude swapped", shortS: 60},
+	{name: "car: compass, declination 12°", scene: fittedCar, spoil: each(func(m *sensor.HeadingFix) { m.HeadingRad -= geo.Rad(12) }), want: "directions from another north", value: 12, within: 2, shortS: 60},
+	{name: "flight: altitude in feet", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM /= 0.3048 }), want: "altitude in feet", shortS: 30},
+	{name: "flight: both in feet", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM /= 0.3048; m.ClearanceM /= 0.3048 }), want: "altitude and clearance in feet"},
+	{name: "flight: converted as if feet", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM *= 0.3048; m.ClearanceM *= 0.3048 }), want: "altitude and clearance in metres, but converted as if from feet", shortS: 30},
+	{name: "flight: heights ×10", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM *= 10; m.ClearanceM *= 10 }), want: "altitude and clearance ten times too large", shortS: 30},
+	{name: "flight: heights ×0.1", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM *= 0.1; m.ClearanceM *= 0.1 }), want: "altitude and clearance ten times too small"},
+	{name: "flight: displacement ×10", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM *= 10; m.NorthM *= 10 }), want: "distances ten times too large"},
+	{name: "flight: displacement ×0.1", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM *= 0.1; m.NorthM *= 0.1 }), want: "distances ten times too small"},
+	{name: "flight: axes swapped", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM, m.NorthM = m.NorthM, m.EastM }), want: "east and north swapped", shortS: 30},
+	{name: "flight: east reversed", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM *= -1 }), want: "east and west reversed"},
+	{name: "flight: displacement reversed", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM *= -1; m.NorthM *= -1 }), want: "whole displacement reversed"},
+	{name: "flight: altimeter 1 s late", scene: agile, spoil: late("altimeter", 1), want: "times late", value: 1},
+	{name: "flight: datum +38 m", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM += 38 }), want: "vertical datum off", value: 38, within: 3, shortS: 30},
+	{name: "flight: declination −9°", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM, m.NorthM = rotate(m.EastM, m.NorthM, -9) }), want: "directions from another north", value: -9, within: 2},
+	{name: "survey: depths in feet", scene: surveyor, spoil: each(func(m *sensor.Sounding) { m.DepthBelowTransducerM /= 0.3048; m.TransducerDepthM /= 0.3048 }), want: "depths in feet"},
+	{name: "survey: depths negative", scene: surveyor, spoil: each(func(m *sensor.Sounding) { m.DepthBelowTransducerM *= -1; m.TransducerDepthM *= -1 }), want: "depth sign reversed"},
+	{name: "survey: depths ×10", scene: surveyor, spoil: each(func(m *sensor.Sounding) { m.DepthBelowTransducerM *= 10; m.TransducerDepthM *= 10 }), want: "depths ten times too large"},
+	{name: "survey: log ×10", scene: surveyor, spoil: each(func(m *sensor.Speed) { m.MPS *= 10 }), want: "speeds ten times too large"},
+	{name: "survey: log in knots", scene: surveyor, spoil: each(func(m *sensor.Speed) { m.MPS /= 0.5144 }), want: "speeds in knots"},
+	{name: "survey: datum −25 m", scene: surveyor, spoil: each(func(m *sensor.Sounding) { m.DepthBelowTransducerM += 25 }), want: "vertical datum off", value: -25, within: 3},
+	{name: "survey: declination 15°", scene: surveyor, spoil: each(func(m *sensor.Speed) { m.CourseRad -= geo.Rad(15) }), want: "directions from another north", value: 15, within: 2},
+	{
+		name: "flight: grid north", scene: flyer, shortS: 30, want: "directions from grid north (invented)", value: gridDeg, within: 0.1, grid: &invented,
+		spoil: each(func(m *sensor.Displacement) { m.EastM, m.NorthM = rotate(m.EastM, m.NorthM, gridDeg) }),
+	},
+}
+
+// invented is a grid whose central meridian is far to the west.
+var invented = Grid{"invented", func(at geo.LonLat) float64 {
+	p := geo.NewTransverseMercator(geo.WGS84, geo.FromDegrees(-43, 45), 1, 0, 0)
+	g, _ := p.Convergence(at)
+	return g
+}}
+
+// gridDeg is its convergence where the scenes are: 13° of longitude times the
+// sine of 45°, and a little.
+var gridDeg = geo.Deg(invented.Convergence(atlantic))
+
+var unspoiled = []plant{
+	{name: "plain car", scene: plainCar},
+	{name: "fitted car", scene: fittedCar, shortS: 120},
+	{name: "flight", scene: flyer, shortS: 30},
+	{name: "agile flight", scene: agile},
+	{name: "survey", scene: surveyor},
+}

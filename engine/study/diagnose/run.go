@@ -1,0 +1,71 @@
+package diagnose
+
+import (
+	"errors"
+	"math"
+	"slices"
+
+	"leadline/engine/sensor"
+	"leadline/engine/session"
+	"leadline/engine/summary"
+)
+
+// run replays the opening of a log with one mistake undone.
+type run struct {
+	mistake *Mistake
+	suite   *sensor.Suite
+	events  []sensor.Event // mended, in the order in which the session takes them
+	next    int
+	s       *session.Session
+	log     Record
+	refused float64            // nats of measurements that were refused
+	motions int                // refused ones
+	latest  *summary.Posterior // when it has left
+}
+
+// newRun prepares a run; config's session is made when it begins.
+func newRun(c session.Config, suite *sensor.Suite, events []sensor.Event, m *Mistake) (*run, error) {
+	s, err := session.New(c)
+	if err != nil {
+		return nil, err
+	}
+	r := &run{mistake: m, suite: suite, s: s, log: Record{mistake: m}}
+	r.events = make([]sensor.Event, len(events))
+	for i, ev := range events {
+		r.events[i] = m.undo(ev)
+	}
+	slices.SortStableFunc(r.events, func(a, b sensor.Event) int {
+		a.Time, b.Time = r.at(a), r.at(b)
+		return a.Compare(b)
+	})
+	s.Watch(r.log.Add)
+	return r, nil
+}
+
+// at is an event's time with the suite's offset taken off.
+func (r *run) at(ev sensor.Event) sensor.Time {
+	return ev.Time - sensor.Time(math.Round(r.suite.Sensor(ev.Sensor, ev.Measurement.Kind()).TimeOffsetS*1e9))
+}
+
+// advance runs up to a time, what is there then included, or to the end.
+func (r *run) advance(until sensor.Time, end bool) error {
+	for ; r.next < len(r.events) && (end || r.at(r.events[r.next]) <= until); r.next++ {
+		ev := r.events[r.next]
+		_, err := r.s.Add(ev)
+		var ref *session.Refusal
+		switch {
+		case err == nil:
+		case !errors.As(err, &ref):
+			return err
+		case sensor.IsMotion(ev.Measurement.Kind()):
+			r.motions++
+		default:
+			r.refused += floorNats
+		}
+	}
+	r.s.Flush()
+	return nil
+}
+
+// nats is the log evidence so far.
+func (r *run) nats() float64 { return r.refused + r.log.nats() }

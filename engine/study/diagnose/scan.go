@@ -1,0 +1,147 @@
+package diagnose
+
+import (
+	"fmt"
+	"math"
+	"slices"
+	"strings"
+
+	"leadline/engine/geo"
+	"leadline/engine/sensor"
+)
+
+// scan is a family of mistakes that differ in a value, which is searched for:
+// first at ±step, ±2·step … ±reach, then between the neighbours of the best.
+type scan struct {
+	family            string
+	step, reach, fine float64
+	// least is the size from which it is a mistake and not an error that
+	// sensors have.
+	least float64
+	// make makes the mistake of a value that stands for all within ±half.
+	make func(value, half float64) Mistake
+	// broadens says that half matters.
+	broadens bool
+	// north is set for directions; see grids.
+	north bool
+}
+
+// values is how many are told apart.
+func (s *scan) values() int { return int(2 * s.reach / s.fine) }
+
+// coarse are the values that are tried first.
+func (s *scan) coarse() []Mistake {
+	var out []Mistake
+	for n := 1; float64(n)*s.step <= s.reach; n++ {
+		for _, v := range []float64{float64(n) * s.step, -float64(n) * s.step} {
+			out = append(out, s.named(v, s.step/2))
+		}
+	}
+	return out
+}
+
+func (s *scan) named(value, half float64) Mistake {
+	m := s.make(value, half)
+	m.family, m.free, m.Value, m.least, m.values = s.family, true, value, s.least, float64(s.values())
+	return m
+}
+
+// The sizes of the searches. Geoids and local datums are within ±110 m of each
+// other and of the ellipsoid (EGM96 undulations reach from -107 to 85 m). Away
+// from the poles declinations are within ±40° or so.
+const (
+	datumStepM, datumReachM, datumFineM, datumLeastM         = 10.0, 110.0, 1.25, 3.0
+	northStepDeg, northReachDeg, northFineDeg, northLeastDeg = 4.0, 44.0, 0.5, 3.0
+)
+
+// scans lists the searches that a log asks for.
+func scans(vs []voice, suite *sensor.Suite) []scan {
+	var out []scan
+	var directed []string
+	kinds := map[string]bool{}
+	for _, v := range vs {
+		if v.heights() {
+			sigmaM := suite.Sensor(v.sensor, v.kind).Noise.SigmaM
+			out = append(out, scan{
+				family: "datum " + v.sensor, step: datumStepM, reach: datumReachM, fine: datumFineM, least: datumLeastM, broadens: true,
+				make: func(value, half float64) Mistake { return v.offset(value, half, sigmaM) },
+			})
+		}
+		if v.directed() {
+			directed = append(directed, v.sensor)
+			kinds[v.sensor+"\x00"+v.kind] = true
+			out = append(out, northScan(v.sensor, v.is))
+		}
+	}
+	if len(directed) > 1 {
+		out = append(out, northScan(strings.Join(directed, ", "), func(s, k string) bool { return kinds[s+"\x00"+k] }))
+	}
+	return out
+}
+
+func northScan(who string, of func(s, k string) bool) scan {
+	return scan{
+		family: "north " + who, step: northStepDeg, reach: northReachDeg, fine: northFineDeg, least: northLeastDeg, north: true,
+		make: func(value, _ float64) Mistake {
+			return northOff("directions from another north", who, "add the declination to the directions, or let them count from true north", of, geo.Rad(value))
+		},
+	}
+}
+
+// refine searches around the best of the coarse values; the last values are
+// exact ones, and the entrant returned is the best of those.
+func (c *course) refine(s *scan, coarse *entrant) *entrant {
+	best := coarse
+	for half := s.step / 2; ; half /= 2 {
+		exact := half/2 < s.fine
+		broad := half / 2
+		if exact {
+			broad = 0
+		}
+		value := best.mistake.Value
+		ms := []Mistake{s.named(value-half, broad), s.named(value+half, broad)}
+		if s.broadens { // what was best stood for more
+			ms, best = append(ms, s.named(value, broad)), nil
+		}
+		for _, e := range c.race(ms) {
+			if c.finished(e) && (best == nil || e.last() > best.last()) {
+				best = e
+			}
+		}
+		if best == nil || exact {
+			return best
+		}
+	}
+}
+
+// grids lists, for the directions of a search, the norths that are known where
+// a vehicle was: those given, and that of the UTM zone. What is too near true
+// north is left out.
+func (s *scan) grids(given []Grid, at geo.LonLat) []Mistake {
+	if !s.north {
+		return nil
+	}
+	var out []Mistake
+	var taken []float64
+	for _, g := range append(slices.Clone(given), utm(at)) {
+		deg := geo.Deg(geo.WrapPi(g.Convergence(at)))
+		same := func(o float64) bool { return math.Abs(o-deg) < northFineDeg/2 }
+		if math.Abs(deg) < s.least || slices.ContainsFunc(taken, same) {
+			continue
+		}
+		taken = append(taken, deg)
+		m := s.named(deg, 0)
+		m.free, m.Name = false, "directions from grid north ("+g.Name+")"
+		m.Remedy = "add the grid's convergence to the directions, or let them count from true north"
+		out = append(out, m)
+	}
+	return out
+}
+
+// utm is the grid of the UTM zone of a place, by the rule of six degrees.
+func utm(at geo.LonLat) Grid {
+	lon, _ := at.Degrees()
+	zone := min(int(math.Floor((lon+180)/6))+1, 60)
+	p := geo.NewTransverseMercator(geo.WGS84, geo.FromDegrees(float64(6*zone-183), 0), 0.9996, 500000, 0)
+	return Grid{fmt.Sprintf("UTM zone %d", zone), func(at geo.LonLat) float64 { g, _ := p.Convergence(at); return g }}
+}

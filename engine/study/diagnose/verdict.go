@@ -1,0 +1,201 @@
+package diagnose
+
+import (
+	"cmp"
+	"errors"
+	"fmt"
+	"math"
+	"slices"
+	"strings"
+
+	"leadline/engine/kernel"
+)
+
+// A mistake is named from a gain on that leaves a hundred to one for it
+// although only one log in a hundred holds one of them (practice), and each of
+// those tried is as likely as the next: by Bayes' rule
+//
+//	gain ≥ ln 99 + ln 99 + ln tried.
+//
+// What is less than ln 99 + ln 99 behind the best is named with it: two
+// mistakes do not differ in how usual they are.
+var logOdds = 2 * kernel.Log(99)
+
+func needed(tried int) float64 { return logOdds + kernel.Log(float64(tried)) }
+
+// tryAll fills the report's candidates and verdict.
+func (c *course) tryAll(r *Report, o Options) error {
+	discrete := catalogue(c.voices)
+	ms := append([]Mistake{{}}, discrete...)
+	searches := scans(c.voices, c.suite)
+	r.Tried = len(discrete)
+	for i := range searches {
+		r.Tried += searches[i].values()
+		ms = append(ms, searches[i].coarse()...)
+	}
+	done, steps := 0, len(c.rounds)+len(searches)
+	progress := func() {
+		if done++; o.Progress != nil {
+			o.Progress(done, steps)
+		}
+	}
+	c.tick = progress
+	es := c.race(ms)
+	c.tick = func() {}
+	base := es[0]
+	if base.err != nil && !errors.Is(base.err, errRefused) {
+		return base.err
+	}
+	var tried []*entrant
+	found := map[string]*entrant{} // looked up only
+	for _, e := range es[1:] {
+		switch {
+		case len(e.nats) == 0:
+		case !e.mistake.free:
+			tried = append(tried, e)
+		default:
+			if o := found[e.mistake.family]; o == nil || len(e.nats) > len(o.nats) || len(e.nats) == len(o.nats) && e.last() > o.last() {
+				found[e.mistake.family] = e
+			}
+		}
+	}
+	for i := range searches {
+		progress()
+		e := found[searches[i].family]
+		if e == nil {
+			continue
+		}
+		// A value beyond half a step from none has a coarse one that is nearer.
+		if c.finished(e) && (!c.finished(base) || e.last() > base.last()) {
+			if fine := c.refine(&searches[i], e); fine != nil {
+				e = fine
+			}
+		}
+		tried = append(tried, e)
+		if c.finished(e) && e.run.latest != nil {
+			known := c.race(searches[i].grids(o.Grids, e.run.latest.Mean))
+			r.Tried += len(known)
+			for _, e := range known {
+				if len(e.nats) > 0 {
+					tried = append(tried, e)
+				}
+			}
+		}
+	}
+	r.NeededNats = needed(r.Tried)
+	best := base
+	for _, e := range tried {
+		if c.finished(e) && (!c.finished(best) || e.last() > best.last()) {
+			best = e
+		}
+	}
+	r.Fits = base.run.log.fits(c.start)
+	r.BaseGivenUpAfter = c.givenUp(base)
+	for _, e := range tried {
+		m := e.mistake
+		k := Candidate{
+			Mistake: m.Name, Sensor: m.Sensor, Value: m.Value, Unit: m.Unit, Remedy: m.Remedy,
+			GainNats: e.gain(base, best), GivenUpAfter: c.givenUp(e), mistake: m,
+			Named: c.finished(e) && math.Abs(m.Value) >= m.least,
+		}
+		for _, f := range e.run.log.fits(c.start) {
+			if f.Bad {
+				k.Bad = append(k.Bad, f.Sensor)
+			}
+		}
+		r.Candidates = append(r.Candidates, k)
+	}
+	r.judge()
+	return nil
+}
+
+// givenUp is when an entrant was dropped, nil if it was not.
+func (c *course) givenUp(e *entrant) *float64 {
+	if c.finished(e) {
+		return nil
+	}
+	after := c.rounds[len(e.nats)-1].Seconds(c.start)
+	return &after
+}
+
+// judge orders the candidates, names those that explain the log and says so.
+func (r *Report) judge() {
+	slices.SortStableFunc(r.Candidates, func(a, b Candidate) int {
+		if done := cmp.Compare(boolInt(a.GivenUpAfter != nil), boolInt(b.GivenUpAfter != nil)); done != 0 {
+			return done
+		}
+		return cmp.Compare(b.GainNats, a.GainNats)
+	})
+	top := math.Inf(-1)
+	for _, k := range r.Candidates {
+		if k.Named {
+			top = math.Max(top, k.GainNats)
+		}
+	}
+	var named []*Candidate
+	for i := range r.Candidates {
+		k := &r.Candidates[i]
+		k.Named = k.Named && k.GainNats >= r.NeededNats && k.GainNats >= top-logOdds && !r.isKnown(k)
+		if k.Named {
+			named = append(named, k)
+		}
+	}
+	r.Verdict = r.say(named)
+}
+
+// say puts the verdict in words.
+func (r *Report) say(named []*Candidate) string {
+	var b strings.Builder
+	switch len(named) {
+	case 0:
+		fmt.Fprintf(&b, "none of the usual mistakes explains it: one is named from %.1f nats on", r.NeededNats)
+		for _, k := range r.Candidates {
+			if k.GivenUpAfter == nil && k.GainNats >= r.NeededNats {
+				fmt.Fprintf(&b, "; %s gains %.0f, but so little is an error that sensors, tides or weather have", k.mistake, k.GainNats)
+			}
+		}
+		return b.String()
+	case 1:
+		k := named[0]
+		fmt.Fprintf(&b, "%s. With that undone the log evidence is %s%.0f nats higher. To do: %s", k.mistake, r.atLeast(), k.GainNats, k.Remedy)
+	default:
+		b.WriteString("one of these, which explain it about equally:")
+		for i, k := range named {
+			if i > 0 {
+				b.WriteByte(';')
+			}
+			fmt.Fprintf(&b, " %s (%s%.0f nats; %s)", k.mistake, r.atLeast(), k.GainNats, k.Remedy)
+		}
+	}
+	if bad := named[0].Bad; len(bad) > 0 {
+		fmt.Fprintf(&b, ". Even so %s fits badly: there is something else, too", strings.Join(bad, ", "))
+	}
+	return b.String()
+}
+
+func (r *Report) atLeast() string {
+	if r.BaseGivenUpAfter != nil {
+		return "at least "
+	}
+	return ""
+}
+
+// isKnown reports whether an angle that was searched for is that of a known
+// north: one that explains the log as well, but for what the search may gain by
+// chance among the values it tells apart.
+func (r *Report) isKnown(k *Candidate) bool {
+	if !k.mistake.free {
+		return false
+	}
+	return slices.ContainsFunc(r.Candidates, func(o Candidate) bool {
+		return o.GivenUpAfter == nil && !o.mistake.free && o.mistake.family == k.mistake.family &&
+			o.GainNats >= k.GainNats-kernel.Log(k.mistake.values)
+	})
+}
+
+func boolInt(b bool) int {
+	if b {
+		return 1
+	}
+	return 0
+}
