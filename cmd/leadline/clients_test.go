@@ -201,9 +201,61 @@ async function followed(client, vehicle) {
 }
 `
 
+// The next two leave a drive, take it up from its first batch on, take it up
+// after what the server has, and are refused a measurement.
+const continueInPython = `
+import sys, grpc, leadline
+from leadline import v1
+def fix(clock): return [{"time": f"2030-05-01T{clock}Z", "measurement": {"fix": {"lon": -30, "lat": 45, "sigma_m": 5}}}]
+header = {"vehicle": "other-python", "map": "town", "start": {"point": {"lon": -30, "lat": 45, "sigma_m": 10}}}
+with leadline.Client(sys.argv[1]) as client:
+    with client.open(header, drive="d") as drive:
+        drive.send(fix("12:00:01"))
+        drive.send(fix("12:00:02"))
+    with client.open(header, drive="d") as drive:
+        assert drive.opened.sequence == 2, drive.opened
+        for second in 1, 2, 3:
+            drive.send(fix(f"12:00:0{second}"))
+    with client.open(header, drive="d", onward=True) as drive:
+        assert drive.opened.sequence == 3, drive.opened
+        drive.send(fix("12:00:04"))
+        drive.send(fix("11:00:00"))
+        assert [r.reason for r in drive.refusals] == [v1.REASON_TOO_LATE], drive.refusals
+        closed = drive.end()
+    assert (closed.accepted, closed.refused) == (4, 1), closed
+    try:
+        client.open({"vehicle": "other-python", "map": "village"})
+    except grpc.RpcError as e:
+        print(e.details())
+`
+
+const continueInJavaScript = `
+const fix = (clock) => [{ time: "2030-05-01T" + clock + "Z", measurement: { fix: { lon: -30, lat: 45, sigma_m: 5 } } }];
+const header = { vehicle: "other-node", map: "town", start: { point: { lon: -30, lat: 45, sigma_m: 10 } } };
+const want = (what, got, wanted) => { if (String(got) !== String(wanted)) throw new Error(what + " " + got + ", want " + wanted); };
+async function continued(client) {
+  let drive = await client.open(header, { drive: "d" });
+  await drive.send(fix("12:00:01"));
+  await drive.send(fix("12:00:02"));
+  drive.leave();
+  drive = await client.open(header, { drive: "d" });
+  want("sequence", drive.opened.sequence, 2);
+  for (const second of [1, 2, 3]) await drive.send(fix("12:00:0" + second));
+  drive.leave();
+  drive = await client.open(header, { drive: "d", onward: true });
+  want("sequence", drive.opened.sequence, 3);
+  await drive.send(fix("12:00:04"));
+  await drive.send(fix("11:00:00"));
+  want("refusals", drive.refusals.map((r) => r.reason), [3]);
+  const closed = await drive.end();
+  want("accepted and refused", [closed.accepted, closed.refused], [4, 1]);
+  await client.open({ vehicle: "other-node", map: "village" }).catch((e) => console.log(e.rawMessage));
+}
+`
+
 // TestClients proves that programs of other languages feed a drive to the same
 // posteriors as replay has, though their connection breaks meanwhile, and can
-// follow and ask; and that a page can do that, from another origin.
+// follow, ask, and continue a drive; and that a page can do that, from another origin.
 func TestClients(t *testing.T) {
 	t.Parallel()
 	dir := t.TempDir()
@@ -234,6 +286,9 @@ func TestClients(t *testing.T) {
 		if !strings.HasSuffix(text, "sha256 "+hash+"\n") || strings.Count(text, "95% within") < 10 || !cut.Load() {
 			t.Errorf("cut: %v; replay has %s:\n%s", cut.Load(), hash, text)
 		}
+		if said := start(t, python, "-c", continueInPython, srv.address).end(t); !strings.Contains(said, `no map "village"`) {
+			t.Errorf("a wrong map: %q", said)
+		}
 		var h tale
 		readJSON(t, follower.end(t), &h)
 		h.check(t, hash)
@@ -241,12 +296,18 @@ func TestClients(t *testing.T) {
 	t.Run("Node", func(t *testing.T) {
 		t.Parallel()
 		node := node(t)
-		script := fmt.Sprintf("import { connect } from %q;\n%s\nconst client = connect(process.argv[1]);\nconsole.log(await followed(client, process.argv[2]));\nclient.close();", absolute(t, webClient+"/node.js"), followInJavaScript)
-		follower := start(t, node, "--input-type=module", "-e", script, srv.address, "van-node")
+		script := func(functions, call string) *program {
+			return start(t, node, "--input-type=module", "-e", fmt.Sprintf("import { connect } from %q;\n%s\nconst client = connect(%q);\n%s;\nclient.close();",
+				absolute(t, webClient+"/node.js"), functions, srv.address, call))
+		}
+		follower := script(followInJavaScript, `console.log(await followed(client, "van-node"))`)
 		address, cut := cutting(t, srv.address, bytes)
 		text := start(t, node, webClient+"/stream-drive.js", driveOf(t, "van-node"), address).end(t)
 		if !strings.HasSuffix(text, "sha256 "+hash+"\n") || strings.Count(text, "95% within") < 3 || !cut.Load() {
 			t.Errorf("cut: %v; replay has %s:\n%s", cut.Load(), hash, text)
+		}
+		if said := script(continueInJavaScript, "await continued(client)").end(t); !strings.Contains(said, `no map "village"`) {
+			t.Errorf("a wrong map: %q", said)
 		}
 		var h tale
 		readJSON(t, follower.end(t), &h)
