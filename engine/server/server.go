@@ -73,6 +73,7 @@ func New(cfg Config) (*Server, error) {
 		// the streams there may be, and some calls, must go through one.
 		grpc.MaxConcurrentStreams(uint32(cfg.Limits.Streams+1000)),
 		grpc.WaitForHandlers(true),
+		grpc.ConnectionTimeout(10*time.Second), // for HTTP/2's handshake
 		grpc.UnaryInterceptor(s.aroundUnary), grpc.StreamInterceptor(s.aroundStream),
 		grpc.UnknownServiceHandler(s.unknown),
 		// A half-open connection is found within 40 s; clients may look as
