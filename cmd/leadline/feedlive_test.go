@@ -10,6 +10,7 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
+	"strconv"
 	"strings"
 	"syscall"
 	"testing"
@@ -87,9 +88,8 @@ func instrument(t *testing.T, w io.Writer, at geo.LonLat) (stop func()) {
 	t.Helper()
 	lon, lat := at.Degrees()
 	angle := func(deg float64, width int) string {
-		d, m := math.Floor(math.Abs(deg)), 0.0
-		m = 60 * (math.Abs(deg) - d)
-		return fmt.Sprintf("%0*d%010.7f", width, int(d), m)
+		d := math.Floor(math.Abs(deg))
+		return fmt.Sprintf("%0*d%010.7f", width, int(d), 60*(math.Abs(deg)-d))
 	}
 	burst := sentence("GPGGA,120000,%s,N,%s,W,4,08,0.9,5.4,M,46.9,M,,", angle(lat, 2), angle(lon, 3)) +
 		sentence("GPVTG,,,,,0.0,N,,,A") + "\xff\xfe$GPG\x00\r\n$GPVTG,1*00\r\n" +
@@ -128,6 +128,16 @@ type live struct {
 	Ended bool
 }
 
+// accepted is the number of measurements that the server took.
+func (l *live) accepted(t *testing.T) int {
+	t.Helper()
+	n, err := strconv.Atoi(l.Posterior.Counts.Accepted)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return n
+}
+
 // heard waits until the server has so many measurements of the vehicle.
 func heard(t *testing.T, srv *running, least int) (l live) {
 	t.Helper()
@@ -135,8 +145,7 @@ func heard(t *testing.T, srv *running, least int) (l live) {
 		out, errs, status := leadline(t, "where", "van", "--at", srv.address, "--json")
 		if status == exitDone {
 			readJSON(t, out, &l)
-			n := 0
-			if _, err := fmt.Sscan(l.Posterior.Counts.Accepted, &n); err == nil && n >= least {
+			if l.accepted(t) >= least {
 				return l
 			}
 		}
@@ -221,9 +230,7 @@ func TestFeedLive(t *testing.T) {
 	}
 	defer u.Close()
 	stop = instrument(t, u, at)
-	before := 0
-	fmt.Sscan(now.Posterior.Counts.Accepted, &before)
-	now = heard(t, srv, before+40)
+	now = heard(t, srv, now.accepted(t)+40)
 	there(now)
 	stop()
 	if status := f.stop(t); status != exitDone || now.Ended {
@@ -245,13 +252,13 @@ func TestFeedLive(t *testing.T) {
 	}
 	f = feedFrom(t, args(fmt.Sprintf("serial:/dev/pts/%d?baud=115200", n))...)
 	stop = instrument(t, port0, at)
-	fmt.Sscan(now.Posterior.Counts.Accepted, &before)
-	there(heard(t, srv, before+40))
+	now = heard(t, srv, now.accepted(t)+40)
+	there(now)
 	stop()
 	if status := f.stop(t); status != exitDone || !strings.Contains(f.out.String(), "sha256 ") {
 		t.Errorf("status %d: %s%s", status, f.out, f.errs)
 	}
-	if l := heard(t, srv, before+40); !l.Ended {
+	if l := heard(t, srv, now.accepted(t)); !l.Ended {
 		t.Error("the drive goes on")
 	}
 }

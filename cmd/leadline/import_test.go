@@ -409,8 +409,10 @@ func TestImportBadInput(t *testing.T) {
 		"column file":       {[]string{csv, "-o", out, "--vehicle", "v", "--columns", file("odd.yaml", "time: {column: t, format: unix_s}\ncolour: red\n")}, []string{"odd.yaml:2", "colour"}},
 		"columns that miss": {[]string{file("other.csv", "a,b\n1,2\n"), "-o", out, "--vehicle", "v", "--columns", columns}, []string{"other.csv:1", `no column "t"`, "a, b"}},
 		"rows that miss":    {[]string{file("text.csv", "t,h\nx,y\n"), "-o", out, "--vehicle", "v", "--columns", columns}, []string{"text.csv", "no measurement", "text.csv:2:1: x"}},
-		"a table of one row of two": {[]string{file("half.csv", "t,h\n1903867200,90\n1903867201,north\n"), "-o", out, "--vehicle", "v", "--columns", columns},
-			[]string{"half.csv", "1 of 2 are refused", "half.csv:3:12: north", "--max-refused"}},
+		"a table of one row of two": {
+			[]string{file("half.csv", "t,h\n1903867200,90\n1903867201,north\n"), "-o", out, "--vehicle", "v", "--columns", columns},
+			[]string{"half.csv", "1 of 2 are refused", "half.csv:3:12: north", "--max-refused"},
+		},
 		"an empty table":   {[]string{file("empty.csv", ""), "-o", out, "--vehicle", "v", "--columns", columns}, []string{"empty.csv", "no header"}},
 		"only a header":    {[]string{file("head.csv", "t,h\n"), "-o", out, "--vehicle", "v", "--columns", columns}, []string{"head.csv", "no measurement in 1 lines"}},
 		"no sentence":      {[]string{file("text.nmea", "hello\n"), "-o", out, "--vehicle", "v"}, []string{"text.nmea", "no NMEA sentence"}},

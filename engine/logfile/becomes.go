@@ -62,7 +62,10 @@ func (n *NMEA) record(r *reading) error {
 				c.num["height_m"] = r.extra
 			}
 			t, err := truth(c, r.at)
-			return n.hand(r, Record{Truth: t}, err)
+			if n.unusable(r, err) {
+				return nil
+			}
+			return n.hand(Record{Truth: t})
 		}
 		kind = sensor.KindFix
 	}
@@ -70,18 +73,25 @@ func (n *NMEA) record(r *reading) error {
 	return n.event(r, n.o.sensor(r.of), m, err)
 }
 
-// event hands a measurement on.
+// event hands a measurement on, unless it is unusable.
 func (n *NMEA) event(r *reading, name string, m sensor.Measurement, err error) error {
-	return n.hand(r, Record{Event: &sensor.Event{Time: r.at, Sensor: name, Number: uint64(r.place.line), Measurement: m}}, err)
-}
-
-func (n *NMEA) hand(r *reading, rec Record, err error) error {
-	if err != nil {
-		n.refuse(&refusal{1, r.address[2:] + ": unusable", err.Error()})
+	if n.unusable(r, err) {
 		return nil
 	}
+	return n.hand(Record{Event: &sensor.Event{Time: r.at, Sensor: name, Number: uint64(r.place.line), Measurement: m}})
+}
+
+func (n *NMEA) hand(rec Record) error {
 	n.tally.took(rec)
 	return n.emit(rec)
+}
+
+// unusable refuses a reading of which nothing can be made.
+func (n *NMEA) unusable(r *reading, err error) bool {
+	if err != nil {
+		n.refuse(&refusal{1, r.address[2:] + ": unusable", err.Error()})
+	}
+	return err != nil
 }
 
 // heading makes a heading true; false if that cannot be.

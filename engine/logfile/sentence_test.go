@@ -1,6 +1,7 @@
 package logfile
 
 import (
+	"errors"
 	"fmt"
 	"math"
 	"strings"
@@ -254,13 +255,13 @@ func TestAngleFormats(t *testing.T) {
 
 // An emitter's error ends the reading and comes back.
 func TestEmitError(t *testing.T) {
-	full := fmt.Errorf("the disk is full")
+	full := errors.New("the disk is full")
 	_, err := ReadNMEA(strings.NewReader(log(zda, "SDDPT,1,0")), "x", &Sentences{}, func(Record) error { return full })
-	if err != full {
+	if !errors.Is(err, full) {
 		t.Errorf("%v", err)
 	}
 	c := parseColumns(t, "time: {column: t, format: unix_s}\nsensors: [{kind: heading, fields: {deg: {column: h}}}]\n")
-	if _, err = ReadCSV(strings.NewReader("t,h\n1,2\n"), "x", c, func(Record) error { return full }); err != full {
+	if _, err = ReadCSV(strings.NewReader("t,h\n1,2\n"), "x", c, func(Record) error { return full }); !errors.Is(err, full) {
 		t.Errorf("%v", err)
 	}
 }

@@ -155,14 +155,9 @@ func (s *stream) cells(t *table) (c *cells, ok bool) {
 			if word, missing, wrong = t.word(f.column, f.name); !missing {
 				c.name[f.name] = word
 			}
-		case f.column < 0:
-			c.num[f.name] = f.conv.of(*f.def.Value)
 		default:
 			var v float64
-			if v, missing, wrong = t.number(f.column, f.name); !missing {
-				if !f.def.Counter {
-					v = f.conv.of(v)
-				}
+			if v, missing, wrong = f.read(t); !missing {
 				c.num[f.name] = v
 			}
 		}
@@ -186,6 +181,18 @@ func (s *stream) cells(t *table) (c *cells, ok bool) {
 	return c, true
 }
 
+// read returns the value of a field in a row, in its own unit, but of a counter
+// in the column's. missing is a cell that holds nothing, bad was refused.
+func (f *boundField) read(t *table) (v float64, missing, bad bool) {
+	if f.column < 0 {
+		return f.conv.of(*f.def.Value), false, false
+	}
+	if v, missing, bad = t.number(f.column, f.name); !f.def.Counter {
+		v = f.conv.of(v)
+	}
+	return v, missing, bad
+}
+
 // increments turns the cells of increments into what happened since the time
 // that it returns: at itself if that is not known yet. A reason says that the
 // row is refused.
@@ -200,18 +207,12 @@ func (s *stream) increments(t *table, c *cells, at sensor.Time) (since sensor.Ti
 			return at, "since is not before the time", fmt.Sprintf("%s and %s", stamp(since), stamp(at))
 		}
 	case s.length != nil:
-		v := 0.0
-		if s.length.column < 0 {
-			v = s.length.conv.of(*s.length.def.Value)
-		} else {
-			raw, missing, bad := t.number(s.length.column, "interval")
-			if bad {
-				return at, "", ""
-			}
-			if missing {
-				return at, "no interval", "the cell is empty"
-			}
-			v = s.length.conv.of(raw)
+		v, missing, bad := s.length.read(t)
+		if bad {
+			return at, "", "" // it was refused
+		}
+		if missing {
+			return at, "no interval", "the cell is empty"
 		}
 		if !(v > 0 && v <= 86400) {
 			return at, "interval", fmt.Sprintf("%v s: it must be above 0 and at most a day", v)

@@ -113,14 +113,16 @@ func (t *table) header(line []byte) error {
 
 // index finds a column by its name, or its number where there is no header.
 func (t *table) index(column string) (int, error) {
-	i := -1
 	if t.names == nil {
 		n, err := strconv.Atoi(column)
 		if err != nil || n < 1 || n > maxCells {
 			return 0, fmt.Errorf("column file: %.40q is no column: without a header columns are numbered from 1", column)
 		}
-		i = n - 1
-	} else if i = slices.Index(t.names, column); i < 0 {
+		t.width = max(t.width, n)
+		return n - 1, nil
+	}
+	i := slices.Index(t.names, column)
+	if i < 0 {
 		var known []string
 		for _, n := range t.names {
 			if len(known) == 20 {
@@ -130,7 +132,8 @@ func (t *table) index(column string) (int, error) {
 			known = append(known, printable(n))
 		}
 		return 0, fmt.Errorf("the header has no column %.40q: it has %s", column, strings.Join(known, ", "))
-	} else if slices.Index(t.names[i+1:], column) >= 0 {
+	}
+	if slices.Contains(t.names[i+1:], column) {
 		return 0, fmt.Errorf("the header has two columns %.40q: name them apart", column)
 	}
 	t.width = max(t.width, i+1)

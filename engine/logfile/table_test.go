@@ -174,35 +174,51 @@ func TestIncrementsAndTime(t *testing.T) {
 	}{
 		{
 			"plain ones at one time are added", "{column: a}", "0 1,1 2,1 3,2 4",
-			[]string{"12:00:01 x travel 1s 2 ±0", "12:00:02 x travel 1s 7 ±0"}, nil, map[string]int{"first of x": 1},
+			[]string{"12:00:01 x travel 1s 2 ±0", "12:00:02 x travel 1s 7 ±0"},
+			nil,
+			map[string]int{"first of x": 1},
 		},
 		{
 			"a counter at one time", "{column: a, counter: true}", "0 1,1 2,1 3,2 4",
-			[]string{"12:00:01 x travel 1s 1 ±0", "12:00:02 x travel 1s 2 ±0"}, nil, map[string]int{"first of x": 1},
+			[]string{"12:00:01 x travel 1s 1 ±0", "12:00:02 x travel 1s 2 ±0"},
+			nil,
+			map[string]int{"first of x": 1},
 		},
 		{
 			"back", "{column: a, counter: true}", "1 1,2 2,0 3,3 4",
-			[]string{"12:00:02 x travel 1s 1 ±0", "12:00:03 x travel 1s 2 ±0"}, map[string]int{"time goes back: x": 1}, map[string]int{"first of x": 1},
+			[]string{"12:00:02 x travel 1s 1 ±0", "12:00:03 x travel 1s 2 ±0"},
+			map[string]int{"time goes back: x": 1},
+			map[string]int{"first of x": 1},
 		},
 		{
 			"a gap in a rate", "{column: a, rate: interval, unit: m/s}", "0 1,1 2,20 3,21 4",
-			[]string{"12:00:01 x travel 1s 2 ±0", "12:00:21 x travel 1s 4 ±0"}, nil, map[string]int{"first of x": 1, "after a gap: x": 1},
+			[]string{"12:00:01 x travel 1s 2 ±0", "12:00:21 x travel 1s 4 ±0"},
+			nil,
+			map[string]int{"first of x": 1, "after a gap: x": 1},
 		},
 		{
 			"a gap in a counter is none", "{column: a, counter: true}", "0 1,1 2,20 300",
-			[]string{"12:00:01 x travel 1s 1 ±0", "12:00:20 x travel 19s 298 ±0"}, nil, map[string]int{"first of x": 1},
+			[]string{"12:00:01 x travel 1s 1 ±0", "12:00:20 x travel 19s 298 ±0"},
+			nil,
+			map[string]int{"first of x": 1},
 		},
 		{
 			"a counter that begins anew", "{column: a, counter: true}", "0 9000,1 9002,2 1,3 4",
-			[]string{"12:00:01 x travel 1s 2 ±0", "12:00:03 x travel 1s 3 ±0"}, map[string]int{"counter jumps: x": 1}, map[string]int{"first of x": 1},
+			[]string{"12:00:01 x travel 1s 2 ±0", "12:00:03 x travel 1s 3 ±0"},
+			map[string]int{"counter jumps: x": 1},
+			map[string]int{"first of x": 1},
 		},
 		{
 			"a stated rate", "{column: a, counter: true, max_rate: 3}", "0 0,1 2,2 6,3 7",
-			[]string{"12:00:01 x travel 1s 2 ±0", "12:00:03 x travel 1s 1 ±0"}, map[string]int{"counter jumps: x": 1}, map[string]int{"first of x": 1},
+			[]string{"12:00:01 x travel 1s 2 ±0", "12:00:03 x travel 1s 1 ±0"},
+			map[string]int{"counter jumps: x": 1},
+			map[string]int{"first of x": 1},
 		},
 		{
 			"a missing reading", "{column: a, counter: true}", "0 0,1 -,2 6",
-			[]string{"12:00:02 x travel 2s 6 ±0"}, nil, map[string]int{"first of x": 1},
+			[]string{"12:00:02 x travel 2s 6 ±0"},
+			nil,
+			map[string]int{"first of x": 1},
 		},
 	} {
 		t.Run(c.name, func(t *testing.T) {
