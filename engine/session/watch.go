@@ -1,6 +1,7 @@
 package session
 
 import (
+	"leadline/engine/filter"
 	"leadline/engine/sensor"
 	"leadline/engine/summary"
 )
@@ -31,6 +32,17 @@ func (s *Session) Watch(f func(Change)) { s.watch = f }
 // changes nothing else.
 func (s *Session) Summarize(sum *summary.Summarizer, dst *summary.Posterior) error {
 	return s.read(sum, dst)
+}
+
+// Rest gives back the memory that a session works with beside its belief, for
+// who keeps many of them; it takes that again when it goes on, as it would have.
+func (s *Session) Rest() {
+	v := s.suite.Vehicle
+	sum, err := summary.New(summary.Options{AlertLimitM: v.AlertLimitM, IntegrityRisk: v.IntegrityRisk, LateralSigmaM: v.LateralSigmaM})
+	if err != nil {
+		panic("session: " + err.Error()) // New made the same
+	}
+	s.work, s.cloud, s.sum, s.fresh = filter.Workspace{}, filter.Cloud{}, sum, false
 }
 
 func (s *Session) watched(c Change) {

@@ -3,6 +3,7 @@ package session
 import (
 	"testing"
 
+	"leadline/engine/geo"
 	"leadline/engine/sensor"
 )
 
@@ -43,5 +44,33 @@ func TestWatch(t *testing.T) {
 	}
 	if got := s.Latest().LogEvidence; sum != got || fixes != 19 || roads == 0 {
 		t.Errorf("%d fixes and %d comparisons with the road were seen, with evidence %v; the session has %v", fixes, roads, sum, got)
+	}
+}
+
+// TestRest proves that a session that gives its memory back now and then
+// computes what another one does.
+func TestRest(t *testing.T) {
+	c := newCar(winding(1), 7, func(s float64) float64 { return 30 + 8*s })
+	c.odometer("odo", 0, 0.1, 20)
+	c.gyro("gyro", 0, 0.13, 20)
+	c.fixes("fix", 0.5, 1, 20, 6)
+	config := Config{Space: c.road, Names: c.road, Start: pointStart(c.road, c.road.charted(30), 10)}
+	alone := feed(t, open(t, config), inOrder(c.list))
+	s := open(t, config)
+	for i, ev := range inOrder(c.list) {
+		if _, err := s.Add(ev); err != nil {
+			t.Fatal(err)
+		}
+		if i%7 == 0 {
+			s.Rest()
+		}
+	}
+	s.Flush()
+	if s.Hash() != alone.hash {
+		t.Error("resting changed the posteriors")
+	}
+	s.Rest()
+	if p, err := s.Inside([][]geo.LonLat{{geo.FromDegrees(-180, -89), geo.FromDegrees(180, -89), geo.FromDegrees(180, 89), geo.FromDegrees(-180, 89)}}); err != nil {
+		t.Errorf("asked after a rest: %v, %v", p, err)
 	}
 }

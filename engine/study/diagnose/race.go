@@ -78,6 +78,7 @@ func (c *course) advance(e *entrant, round int) {
 		return
 	}
 	e.nats = append(e.nats, e.run.nats())
+	e.run.s.Rest() // many wait for their next round
 }
 
 // leave gives the memory of its session back.
