@@ -77,7 +77,7 @@ func TestCheckRefuses(t *testing.T) {
 		{Turn{since, inf, 0.1}, "angle_deg"},
 		{Turn{since, 1, nan}, "sigma_deg"},
 		{Displacement{since, nan, 0, [3]float64{1, 0, 1}}, "east_m"},
-		{Displacement{since, 1, 0, [3]float64{0, 0, 1}}, "east-east"},
+		{Displacement{since, 1, 0, [3]float64{0, 0, 1}}, "east_m2"},
 		{Displacement{since, 1, 0, [3]float64{1, 1, 1}}, "positive definite"},
 		{Displacement{since, 1, 0, [3]float64{1, nan, 1}}, "positive definite"},
 		{BodyDisplacement{since, 1, inf, 0, 1, 1, 1}, "right_m"},

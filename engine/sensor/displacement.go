@@ -28,10 +28,10 @@ func (m Displacement) Check(at Time) error {
 	p.length("north_m", m.NorthM)
 	ee, en, nn := m.CovM2[0], m.CovM2[1], m.CovM2[2]
 	const lo, hi = minSigmaM * minSigmaM, maxSigmaM * maxSigmaM
-	p.within("covariance east-east", ee, lo, hi)
-	p.within("covariance north-north", nn, lo, hi)
+	p.within("covariance east_m2", ee, lo, hi)
+	p.within("covariance north_m2", nn, lo, hi)
 	if len(p.list) == 0 && !(math.Abs(en) <= (1-1e-9)*math.Sqrt(ee)*math.Sqrt(nn)) {
-		p.addf("covariance (%v, %v, %v) is not positive definite: the square of east-north must be below east-east times north-north", ee, en, nn)
+		p.addf("covariance (%v, %v, %v) is not positive definite: the square of east_north_m2 must be below east_m2 times north_m2", ee, en, nn)
 	}
 	return p.err()
 }

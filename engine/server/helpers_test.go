@@ -176,8 +176,14 @@ func voyage(seed uint64, n int) []sensor.Event {
 // replayed runs a voyage through a session without a server.
 func replayed(t *testing.T, evs []sensor.Event) (hash string, released, times int) {
 	t.Helper()
+	return replayedIn(t, 0, evs)
+}
+
+// replayedIn does so with a belief of at most so many cells.
+func replayedIn(t *testing.T, maxCells int, evs []sensor.Event) (hash string, released, times int) {
+	t.Helper()
 	s, err := session.New(session.Config{
-		Vehicle: "v", Space: sea().Space,
+		Vehicle: "v", Space: sea().Space, MaxCells: maxCells,
 		Start: session.Start{Kind: session.AtPoint, Point: middle, SigmaM: 100},
 	})
 	if err != nil {
