@@ -26,6 +26,8 @@ type Config struct {
 	// MaxCells is session.Config.MaxCells.
 	MaxCells int
 	Limits   Limits
+	// Uploads, if set, lets clients add maps.
+	Uploads *Uploads
 	// Origins are those whose pages may call the API from a browser, beside
 	// pages of this server: scheme, host and port.
 	Origins []string
@@ -45,6 +47,12 @@ type Map struct {
 	Name  string
 	Space filter.Space
 	Names session.Names
+	// About is told to those who ask what the map is.
+	About MapAbout
+	// Close, if set, is called once the server uses the map no more: when it
+	// has been replaced and its last session has left, or at the end of
+	// Shutdown.
+	Close func() error
 }
 
 // Session is what the server needs of session.Session. One goroutine calls it.
@@ -109,6 +117,11 @@ type Limits struct {
 	// Predictions is the number of beliefs that are carried on to the present
 	// at once; each takes memory and up to a second. Default 2.
 	Predictions int
+	// Followers is the number of Follow calls at once; as many whose stream
+	// broke are kept to be resumed. Default 100.
+	Followers int
+	// ResumeTimeout is for how long they are. Default 5 minutes.
+	ResumeTimeout time.Duration
 	// OpenTimeout is how long a stream may take to say what it is for.
 	// Default 10 s.
 	OpenTimeout time.Duration
@@ -125,6 +138,7 @@ func (l *Limits) fields() []limit {
 		{"BatchMeasurements", &l.BatchMeasurements, 1024},
 		{"QueueBatches", &l.QueueBatches, 4},
 		{"Regions", &l.Regions, 8},
+		{"Followers", &l.Followers, 100},
 		{"Questions", &l.Questions, 100},
 		{"Predictions", &l.Predictions, 2},
 	}
@@ -145,6 +159,9 @@ func (l Limits) withDefaults() Limits {
 	}
 	if l.IdleTimeout == 0 {
 		l.IdleTimeout = time.Hour
+	}
+	if l.ResumeTimeout == 0 {
+		l.ResumeTimeout = 5 * time.Minute
 	}
 	if l.OpenTimeout == 0 {
 		l.OpenTimeout = 10 * time.Second
@@ -168,7 +185,9 @@ func (c *Config) Validate() error {
 			errs = append(errs, fmt.Errorf("server: map %q has no space", m.Name))
 		}
 	}
-	if len(c.Maps) == 0 {
+	if c.Uploads != nil {
+		errs = append(errs, c.Uploads.validate()...)
+	} else if len(c.Maps) == 0 {
 		errs = append(errs, errors.New("server: no map: give at least one"))
 	}
 	for _, f := range c.Limits.fields() {
@@ -176,18 +195,8 @@ func (c *Config) Validate() error {
 			errs = append(errs, fmt.Errorf("server: limit %s is %d: it must be positive, or 0 for %d", f.name, *f.v, f.or))
 		}
 	}
-	if c.Limits.IdleTimeout < 0 || c.Limits.OpenTimeout < 0 {
+	if c.Limits.IdleTimeout < 0 || c.Limits.OpenTimeout < 0 || c.Limits.ResumeTimeout < 0 {
 		errs = append(errs, errors.New("server: a timeout is negative"))
 	}
 	return errors.Join(errs...)
-}
-
-// find returns the map of a name.
-func (c *Config) find(name string) (Map, bool) {
-	for _, m := range c.Maps {
-		if m.Name == name {
-			return m, true
-		}
-	}
-	return Map{}, false
 }

@@ -177,7 +177,5 @@ func (o *owner) closing() *leadlinev1.Closed {
 
 // message converts a posterior as of now.
 func (o *owner) message(p *summary.Posterior) *leadlinev1.Posterior {
-	m := message(p, o.vehicle, o.m, o.srv.cfg.Now())
-	m.Counts.Refused += o.malformed
-	return m
+	return o.srv.message(p, o.vehicle, o.m.Map, o.malformed, o.srv.cfg.Now())
 }

@@ -21,7 +21,7 @@ type owner struct {
 	vehicle  string
 	drive    string
 	header   *leadlinev1.DriveHeader
-	m        Map
+	m        *mapUse
 	openedAt time.Time
 
 	attach chan *attachment
@@ -32,6 +32,8 @@ type owner struct {
 	err    error
 	// latest is the latest posterior, nil before the first. It is not changed.
 	latest atomic.Pointer[summary.Posterior]
+	// subject is the drive as those see it who follow the vehicle.
+	subject *subject
 
 	// Guarded by srv.mu.
 	streams   int // that use it
@@ -47,6 +49,7 @@ type owner struct {
 	at         *attachment // the stream that feeds it, or nil
 	out        []item      // replies that wait; no batch is taken while any do
 	log        driveLog
+	extras     *extras // for those who follow
 }
 
 // attachment joins a stream to an owner.
@@ -74,7 +77,7 @@ type item struct {
 }
 
 // newOwner makes an owner that the caller's stream uses; go run starts it.
-func newOwner(s *Server, req *leadlinev1.Open, m Map, sess Session) *owner {
+func newOwner(s *Server, req *leadlinev1.Open, m *mapUse, sess Session) *owner {
 	o := &owner{
 		srv: s, vehicle: req.GetHeader().GetVehicle(), drive: req.GetDrive(), header: req.GetHeader(), m: m, sess: sess,
 		openedAt: s.cfg.Now(),
@@ -82,6 +85,7 @@ func newOwner(s *Server, req *leadlinev1.Open, m Map, sess Session) *owner {
 		quit: make(chan struct{}), dead: make(chan struct{}),
 		streams: 1,
 	}
+	o.subject, o.extras = o.newSubject(), newExtras(sess, m.Space)
 	o.log = newDriveLog(s.cfg.Log, s.cfg.Now, o.vehicle, o.drive)
 	return o
 }
@@ -105,6 +109,7 @@ func (o *owner) stop(err error) {
 // run is the owner's goroutine.
 func (o *owner) run() {
 	defer o.srv.ended.Done()
+	defer o.srv.releaseMap(o.m)
 	defer close(o.dead)
 	defer o.leave()
 	defer func() {
@@ -137,6 +142,8 @@ func (o *owner) run() {
 			o.take(a)
 		case f := <-o.asks:
 			f()
+		case <-o.subject.poke:
+			o.srv.hub.present(o.subject, o.extras)
 		case w := <-in:
 			o.work(w)
 		case out <- next:
@@ -157,6 +164,7 @@ func (o *owner) leave() {
 	if !o.ended {
 		o.farewell(false, "", why)
 	}
+	o.srv.hub.forget(o.subject)
 	if !o.ended || !errors.Is(o.err, errStopping) {
 		accepted, refused := o.counts()
 		o.log.Info("drive dropped", "why", why, "ended", o.ended, "posteriors", o.posteriors, "accepted", accepted, "refused", refused, o.log.reasons())

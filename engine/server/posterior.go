@@ -22,6 +22,15 @@ var statuses = map[summary.Status]leadlinev1.Status{
 	summary.Unsure:       leadlinev1.Status_STATUS_UNSURE,
 }
 
+// message converts a posterior, as of a time. malformed is how many
+// measurements were refused before they reached the session.
+func (s *Server) message(p *summary.Posterior, vehicle string, m Map, malformed uint64, now time.Time) *leadlinev1.Posterior {
+	out := message(p, vehicle, m, now)
+	out.Counts.Refused += malformed
+	out.NewerMapFingerprint = s.atlas.newer(m.Name, p.Map)
+	return out
+}
+
 // message converts a posterior, as of a time. Only one on roads has edges, and
 // the index of a cell there is that of an edge.
 func message(p *summary.Posterior, vehicle string, m Map, now time.Time) *leadlinev1.Posterior {

@@ -9,7 +9,6 @@ import (
 	"google.golang.org/protobuf/proto"
 
 	"leadline/engine/filter"
-	"leadline/engine/sensor"
 	"leadline/engine/session"
 	"leadline/engine/wire"
 	leadlinev1 "leadline/proto/leadline/v1"
@@ -37,23 +36,14 @@ func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error)
 	if _, ok := leadlinev1.Reply_name[int32(req.GetReply())]; !ok {
 		return nil, badField("open.reply", "open: reply is %d: give one of those that feed.proto names", req.GetReply())
 	}
-	m, ok := s.cfg.find(h.Map)
-	if !ok {
-		var names []string
-		for _, m := range s.cfg.Maps {
-			names = append(names, m.Name)
-		}
-		return nil, refuse(leadlinev1.Reason_REASON_UNKNOWN_MAP, about{"map": h.Map}, "open: header: there is no map %q here: known are %s", h.Map, known(names))
+	m := s.atlas.acquire(h.Map)
+	if m == nil {
+		return nil, s.unknownMap(h.Map)
 	}
-	var suite *sensor.Suite
-	if h.Suite != "" {
-		if suite, ok = s.cfg.Suites[h.Suite]; !ok {
-			var names []string
-			for n := range s.cfg.Suites {
-				names = append(names, n)
-			}
-			return nil, refuse(leadlinev1.Reason_REASON_UNKNOWN_SUITE, about{"suite": h.Suite}, "open: header: there is no suite %q here: known are %s", h.Suite, known(names))
-		}
+	defer s.releaseMap(m) // the owner holds it for itself
+	suite := s.cfg.Suites[h.Suite]
+	if h.Suite != "" && suite == nil {
+		return nil, s.unknownSuite(h.Suite)
 	}
 	if o, err := s.resume(req); o != nil || err != nil {
 		return o, err
@@ -131,7 +121,7 @@ func (s *Server) resumeLocked(req *leadlinev1.Open) (*owner, error) {
 }
 
 // admit makes an owner of a session, unless another stream was faster.
-func (s *Server) admit(req *leadlinev1.Open, m Map, sess Session) (*owner, error) {
+func (s *Server) admit(req *leadlinev1.Open, m *mapUse, sess Session) (*owner, error) {
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	if o, err := s.resumeLocked(req); o != nil || err != nil {
@@ -146,6 +136,8 @@ func (s *Server) admit(req *leadlinev1.Open, m Map, sess Session) (*owner, error
 	}
 	o := newOwner(s, req, m, sess)
 	s.owners[vehicle] = o
+	s.atlas.hold(m)
+	s.hub.begin(o.subject)
 	s.ended.Add(1)
 	o.log.Info("drive opened", "map", m.Name, "suite", req.GetHeader().GetSuite())
 	go o.run()

@@ -32,6 +32,11 @@ type Server struct {
 	openings    chan struct{} // holds a token a session being made
 	predictions chan struct{} // and one a belief being carried on
 	streams     atomic.Int64
+	hub         *hub
+	atlas       *atlas
+	// uploads is nil where none are taken; uploading holds a token each.
+	uploads   *Uploads
+	uploading chan struct{}
 
 	draining chan struct{} // closed when streams should end
 	drain    sync.Once
@@ -65,6 +70,8 @@ func New(cfg Config) (*Server, error) {
 		predictions: make(chan struct{}, cfg.Limits.Predictions),
 		draining:    make(chan struct{}),
 		owners:      map[string]*owner{},
+		hub:         newHub(cfg.Limits, cfg.Now),
+		atlas:       newAtlas(cfg.Maps),
 	}
 	s.grpc = grpc.NewServer(
 		grpc.MaxRecvMsgSize(cfg.Limits.MessageBytes),
@@ -95,6 +102,11 @@ func New(cfg Config) (*Server, error) {
 	}
 	leadlinev1.RegisterPositionServiceServer(s.web, s)
 	healthv1.RegisterHealthServer(s.web, s.health)
+	if cfg.Uploads != nil {
+		if err := s.keepMaps(); err != nil {
+			return nil, err
+		}
+	}
 	s.health.SetServingStatus(leadlinev1.PositionService_ServiceDesc.ServiceName, healthv1.HealthCheckResponse_SERVING)
 	return s, nil
 }
@@ -148,6 +160,9 @@ func (s *Server) Shutdown(ctx context.Context) error {
 	}
 	s.stopOwners()
 	s.ended.Wait()
+	if closed := s.atlas.close(); closed != nil {
+		s.cfg.Log.Error("map cannot be closed", "error", closed)
+	}
 	return err
 }
 

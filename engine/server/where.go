@@ -102,6 +102,9 @@ func (s *Server) ask(ctx context.Context, vehicle string, q *question) *leadline
 	if err != nil {
 		return &leadlinev1.WhereAnswer{Vehicle: vehicle, Failure: failure(err)}
 	}
+	if q.toNow && s.atlas.hold(o.m) { // the belief is carried on though the owner may leave
+		defer s.releaseMap(o.m)
+	}
 	r := &reply{} // the owner may write it after an error
 	if err := o.do(ctx, func() { *r = o.answer(q) }); err != nil {
 		return &leadlinev1.WhereAnswer{Vehicle: vehicle, Drive: o.drive, Failure: failure(err)}
@@ -173,8 +176,7 @@ func (s *Server) toNow(ctx context.Context, o *owner, r *reply, q *question) (m 
 	if err != nil {
 		return nil, refuse(leadlinev1.Reason_REASON_NO_POSTERIOR, o.about(), "where: predict_to_now: vehicle %q: %v: leave predict_to_now out", o.vehicle, err)
 	}
-	m = message(p, o.vehicle, o.m, now)
-	m.Counts.Refused += r.malformed
+	m = s.message(p, o.vehicle, o.m.Map, r.malformed, now)
 	m.PredictedS = sensor.Time(p.TimeNS).Seconds(last)
 	return m, more(m, r.ahead, q)
 }

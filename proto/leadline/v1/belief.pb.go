@@ -103,7 +103,8 @@ type BeliefGrid struct {
 	Rows    uint32                 `protobuf:"varint,2,opt,name=rows,proto3" json:"rows,omitempty"`
 	// Middles of the outermost cells: first row and column, first row and last
 	// column, last row and first column, last row and column. Between them
-	// positions are bilinear to well within a cell.
+	// positions are bilinear, to 5 m over 10 km and 500 m over 100 km up to 65
+	// degrees of latitude.
 	First     *Position `protobuf:"bytes,3,opt,name=first,proto3" json:"first,omitempty"`
 	FirstLast *Position `protobuf:"bytes,4,opt,name=first_last,json=firstLast,proto3" json:"first_last,omitempty"`
 	LastFirst *Position `protobuf:"bytes,5,opt,name=last_first,json=lastFirst,proto3" json:"last_first,omitempty"`
@@ -203,7 +204,7 @@ func (x *BeliefGrid) GetCellM() float64 {
 	return 0
 }
 
-// BeliefStretch is a run of cells along a directed edge. At most 8192 cells are
+// BeliefStretch is a run of cells along a directed edge. At most 4096 cells are
 // told, the heaviest ones.
 type BeliefStretch struct {
 	state protoimpl.MessageState `protogen:"open.v1"`

@@ -1,0 +1,355 @@
+package server
+
+import (
+	"context"
+	"crypto/sha256"
+	"encoding/hex"
+	"errors"
+	"fmt"
+	"io"
+	"io/fs"
+	"os"
+	"path/filepath"
+	"regexp"
+	"runtime/debug"
+	"slices"
+	"strings"
+	"time"
+
+	"google.golang.org/grpc"
+	"google.golang.org/grpc/status"
+
+	leadlinev1 "leadline/proto/leadline/v1"
+)
+
+// Uploads lets clients add maps.
+type Uploads struct {
+	// Folder keeps them, one file a map, so that a server that starts again
+	// finds them. It must exist, and be the server's alone.
+	Folder string
+	// Suffixes are how the names of compiled maps end, by their kind.
+	Suffixes map[leadlinev1.MapKind]string
+	// Open opens a compiled map, whose name ends in its suffix. It must take
+	// any file, however damaged, and check all of it.
+	Open func(path string) (Map, error)
+	// MaxBytes bounds the size of a file; 0 is 4 GiB.
+	MaxBytes int64
+	// Maps bounds the number of maps, those that were there at the start
+	// included; 0 is 100. AtOnce bounds the uploads at once; 0 is 2.
+	Maps, AtOnce int
+}
+
+const (
+	maxChunk = 1 << 20
+	// part begins the name of a file that is not whole yet.
+	part = ".part-"
+)
+
+func (u *Uploads) withDefaults() *Uploads {
+	c := *u
+	if c.MaxBytes == 0 {
+		c.MaxBytes = 4 << 30
+	}
+	if c.Maps == 0 {
+		c.Maps = 100
+	}
+	if c.AtOnce == 0 {
+		c.AtOnce = 2
+	}
+	return &c
+}
+
+// validate lists what is wrong.
+func (u *Uploads) validate() (errs []error) {
+	if info, err := os.Stat(u.Folder); err != nil || !info.IsDir() {
+		errs = append(errs, fmt.Errorf("server: there is no folder %q for uploaded maps: make it first", u.Folder))
+	}
+	if u.Open == nil || u.Suffixes[leadlinev1.MapKind_MAP_KIND_ROADS] == "" || u.Suffixes[leadlinev1.MapKind_MAP_KIND_HEIGHTS] == "" {
+		errs = append(errs, errors.New("server: uploads need Open and a suffix for each kind of map"))
+	}
+	if u.MaxBytes < 0 || u.Maps < 0 || u.AtOnce < 0 {
+		errs = append(errs, errors.New("server: a limit of uploads is negative"))
+	}
+	return errs
+}
+
+// kept opens the maps in the folder, and removes what uploads left unfinished.
+// A map that cannot be opened is passed over, with the reason.
+func (u *Uploads) kept() (ms []Map, problems []error, err error) {
+	entries, err := os.ReadDir(u.Folder)
+	if err != nil {
+		return nil, nil, err
+	}
+	for _, e := range entries {
+		path := filepath.Join(u.Folder, e.Name())
+		if strings.HasPrefix(e.Name(), part) {
+			if err := os.Remove(path); err != nil {
+				problems = append(problems, err)
+			}
+			continue
+		}
+		name, ok := u.mapName(e.Name())
+		if !ok || slices.ContainsFunc(ms, func(m Map) bool { return m.Name == name }) {
+			problems = append(problems, fmt.Errorf("%s is no map by its name, or another one has that name", path))
+			continue
+		}
+		m, err := u.open(path, name)
+		if err != nil {
+			problems = append(problems, err)
+			continue
+		}
+		ms = append(ms, m)
+	}
+	return ms, problems, nil
+}
+
+// keepMaps puts in the maps that were uploaded before the server was started.
+// They take the place of configured ones, as they did when they came.
+func (s *Server) keepMaps() error {
+	s.uploads = s.cfg.Uploads.withDefaults()
+	s.uploading = make(chan struct{}, s.uploads.AtOnce)
+	ms, problems, err := s.uploads.kept()
+	if err != nil {
+		return fmt.Errorf("server: uploaded maps: %w", err)
+	}
+	for _, err := range problems {
+		s.cfg.Log.Error("uploaded map passed over", "error", err)
+	}
+	for _, m := range ms {
+		old := s.atlas.current[m.Name]
+		s.atlas.current[m.Name] = &mapUse{Map: m, described: m.describe()}
+		if old != nil {
+			s.cfg.Log.Info("uploaded map in place of a configured one", "map", m.Name)
+			s.closeMap(old)
+		}
+	}
+	return nil
+}
+
+// mapName takes a file's name apart.
+func (u *Uploads) mapName(file string) (name string, ok bool) {
+	for _, suffix := range u.Suffixes {
+		if name, ok := strings.CutSuffix(file, suffix); ok && checkMapName(name) == nil {
+			return name, true
+		}
+	}
+	return "", false
+}
+
+// open opens a map under a name. A defect of what reads it must not end the
+// server.
+func (u *Uploads) open(path, name string) (m Map, err error) {
+	defer func() {
+		if r := recover(); r != nil {
+			m, err = Map{}, fmt.Errorf("it cannot be read (%v)\n%s", r, debug.Stack())
+		}
+	}()
+	m, err = u.Open(path)
+	m.Name = name
+	return m, err
+}
+
+// mapNames are those that are file names everywhere, and of which none is
+// hidden or leads elsewhere.
+var mapNames = regexp.MustCompile(`^[A-Za-z0-9][A-Za-z0-9_-]{0,99}$`)
+
+func checkMapName(name string) error {
+	if !mapNames.MatchString(name) {
+		return badField("beginning.name", "upload: name %q: give up to 100 letters, digits, - and _, a letter or digit first", clip(name))
+	}
+	return nil
+}
+
+type uploadStream = grpc.ClientStreamingServer[leadlinev1.UploadMapRequest, leadlinev1.UploadMapResponse]
+
+// UploadMap takes a map: see the .proto file.
+func (s *Server) UploadMap(stream uploadStream) error {
+	if s.uploads == nil {
+		return refuse(leadlinev1.Reason_REASON_NOT_OFFERED, nil, "upload: this server takes no maps: its operator must name a folder for them")
+	}
+	select {
+	case s.uploading <- struct{}{}:
+		defer func() { <-s.uploading }()
+	default:
+		return full("uploads", cap(s.uploading), "upload: the server takes %d maps at once: try later", cap(s.uploading))
+	}
+	messages := make(chan uploaded)
+	go receiveMap(stream.Context(), stream, messages) // ends with the stream's context
+	first, err := s.nextUploaded(stream.Context(), messages)
+	if err != nil && !errors.Is(err, io.EOF) {
+		return err
+	}
+	b := first.GetBeginning()
+	if b == nil {
+		return refuse(leadlinev1.Reason_REASON_WRONG_MESSAGE, nil, "upload: the first message is not a beginning: send that first")
+	}
+	if err := s.checkBeginning(b); err != nil {
+		return err
+	}
+	m, err := s.takeMap(stream.Context(), messages, b)
+	if err != nil {
+		return err
+	}
+	s.cfg.Log.Info("map uploaded", "map", m.GetName(), "fingerprint", m.GetFingerprint(), "bytes", b.GetBytes())
+	return stream.SendAndClose(&leadlinev1.UploadMapResponse{Map: m})
+}
+
+// checkBeginning refuses what need not be sent at all.
+func (s *Server) checkBeginning(b *leadlinev1.MapBeginning) error {
+	if err := checkMapName(b.GetName()); err != nil {
+		return err
+	}
+	if s.uploads.Suffixes[b.GetKind()] == "" {
+		return badField("beginning.kind", "upload: kind %v: give MAP_KIND_ROADS or MAP_KIND_HEIGHTS", b.GetKind())
+	}
+	if n := b.GetBytes(); n == 0 {
+		return badField("beginning.bytes", "upload: bytes is missing: give the size of the file")
+	} else if n > uint64(s.uploads.MaxBytes) {
+		return badField("beginning.bytes", "upload: the file has %d bytes: at most %d", n, s.uploads.MaxBytes)
+	}
+	if sum, err := hex.DecodeString(b.GetSha256()); err != nil || len(sum) != sha256.Size {
+		return badField("beginning.sha256", "upload: sha256 %q is none: give 64 hexadecimal digits", clip(b.GetSha256()))
+	}
+	return s.atlas.mayPut(b.GetName(), b.GetKind(), b.GetReplace(), s.uploads.Maps)
+}
+
+// takeMap receives a file, opens it and puts the map in.
+func (s *Server) takeMap(ctx context.Context, messages <-chan uploaded, b *leadlinev1.MapBeginning) (*leadlinev1.MapDescription, error) {
+	suffix := s.uploads.Suffixes[b.GetKind()]
+	file, err := os.CreateTemp(s.uploads.Folder, part+"*"+suffix)
+	if err != nil {
+		return nil, s.cannotKeep(err)
+	}
+	path := file.Name()
+	defer os.Remove(path) // fails once it has its own name
+	err = s.receiveFile(ctx, messages, b, file)
+	if closed := file.Close(); err == nil && closed != nil {
+		err = s.cannotKeep(closed)
+	}
+	if err != nil {
+		return nil, err
+	}
+	m, err := s.uploads.open(path, b.GetName())
+	if err != nil {
+		s.cfg.Log.Warn("uploaded map refused", "map", b.GetName(), "error", err)
+		what, _, _ := strings.Cut(strings.ReplaceAll(err.Error(), path, "the file"), "\n")
+		return nil, refuse(leadlinev1.Reason_REASON_BAD_MAP, about{"map": b.GetName()}, "upload: %s", clip(what))
+	}
+	if m.kind() != b.GetKind() {
+		m.close()
+		return nil, refuse(leadlinev1.Reason_REASON_BAD_MAP, about{"map": b.GetName()}, "upload: the file is a map of %s: give that kind", kindWord(m.kind()))
+	}
+	old, err := s.atlas.put(m, b.GetReplace(), s.uploads.Maps, func() error {
+		if err := os.Rename(path, filepath.Join(s.uploads.Folder, b.GetName()+suffix)); err != nil {
+			return s.cannotKeep(err)
+		}
+		if err := syncFolder(s.uploads.Folder); err != nil {
+			return s.cannotKeep(err)
+		}
+		return nil
+	})
+	if err != nil {
+		m.close()
+		return nil, err
+	}
+	if old != nil {
+		s.closeMap(old)
+	}
+	return s.atlas.describe(b.GetName())[0], nil
+}
+
+// receiveFile writes a file as it comes, to the disk.
+func (s *Server) receiveFile(ctx context.Context, messages <-chan uploaded, b *leadlinev1.MapBeginning, file *os.File) error {
+	damaged := func(format string, args ...any) error {
+		return refuse(leadlinev1.Reason_REASON_BAD_MAP, about{"map": b.GetName()}, "upload: "+format+": send it again", args...)
+	}
+	sum := sha256.New()
+	for n := uint64(0); ; {
+		m, err := s.nextUploaded(ctx, messages)
+		switch {
+		case errors.Is(err, io.EOF):
+			if n < b.GetBytes() {
+				return damaged("%d of %d bytes came", n, b.GetBytes())
+			}
+			if got := hex.EncodeToString(sum.Sum(nil)); !strings.EqualFold(got, b.GetSha256()) {
+				return damaged("what came has the sha256 %s, not %s", got, b.GetSha256())
+			}
+			if err := file.Sync(); err != nil {
+				return s.cannotKeep(err)
+			}
+			return nil
+		case err != nil:
+			return err
+		}
+		chunk := m.GetChunk()
+		switch n += uint64(len(chunk)); {
+		case len(chunk) == 0:
+			return refuse(leadlinev1.Reason_REASON_WRONG_MESSAGE, nil, "upload: a message after the beginning without a chunk: send the file's bytes")
+		case len(chunk) > maxChunk:
+			return badField("chunk", "upload: a chunk of %d bytes: at most %d", len(chunk), maxChunk)
+		case n > b.GetBytes():
+			return damaged("more than the %d bytes came that were announced", b.GetBytes())
+		}
+		if _, err := io.MultiWriter(file, sum).Write(chunk); err != nil {
+			return s.cannotKeep(err)
+		}
+	}
+}
+
+// cannotKeep tells the operator what is wrong with the folder, and the client
+// that something is.
+func (s *Server) cannotKeep(err error) error {
+	s.cfg.Log.Error("an uploaded map cannot be kept", "folder", s.uploads.Folder, "error", err)
+	var p *fs.PathError
+	if errors.As(err, &p) {
+		err = p.Err
+	}
+	return refuse(leadlinev1.Reason_REASON_SERVER_FULL, nil, "upload: the server cannot keep the file (%v): tell its operator", err)
+}
+
+// syncFolder makes a renaming last.
+func syncFolder(path string) error {
+	d, err := os.Open(path)
+	if err != nil {
+		return err
+	}
+	defer d.Close()
+	return d.Sync()
+}
+
+// uploaded is what an upload's stream brought.
+type uploaded struct {
+	message *leadlinev1.UploadMapRequest
+	err     error
+}
+
+// receiveMap passes on what the stream brings until it brings an error.
+func receiveMap(ctx context.Context, stream uploadStream, to chan<- uploaded) {
+	for {
+		m, err := stream.Recv()
+		select {
+		case to <- uploaded{m, err}:
+		case <-ctx.Done():
+			return
+		}
+		if err != nil {
+			return
+		}
+	}
+}
+
+// nextUploaded waits for the next message of an upload; io.EOF after the last.
+func (s *Server) nextUploaded(ctx context.Context, messages <-chan uploaded) (*leadlinev1.UploadMapRequest, error) {
+	late := time.NewTimer(s.cfg.Limits.OpenTimeout)
+	defer late.Stop()
+	select {
+	case m := <-messages:
+		return m.message, m.err
+	case <-late.C:
+		return nil, refuse(leadlinev1.Reason_REASON_SILENT, nil, "upload: no message for %v: send the map without a pause", s.cfg.Limits.OpenTimeout)
+	case <-s.draining:
+		return nil, errStopping
+	case <-ctx.Done():
+		return nil, status.FromContextError(ctx.Err()).Err()
+	}
+}
