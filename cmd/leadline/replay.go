@@ -8,11 +8,13 @@ import (
 	"os"
 	"path/filepath"
 	"strings"
+	"time"
 
 	"github.com/spf13/cobra"
 
 	"leadline/engine/drivefile"
 	"leadline/engine/session"
+	"leadline/engine/study/diagnose"
 	"leadline/engine/study/replay"
 	"leadline/engine/study/score"
 	"leadline/engine/study/track"
@@ -28,6 +30,8 @@ type replayOptions struct {
 	asJSON              bool
 	allowRefused        bool
 	maxCells            int
+	diagnose, explain   string
+	explainWithin       time.Duration
 }
 
 func replayCommand() *cobra.Command {
@@ -44,6 +48,9 @@ func replayCommand() *cobra.Command {
 	f.StringVar(&o.dir, "out", "", "write DIR/"+setting+"/DRIVE/{track.csv, track.geojson, track.png, score.json, timing.json}")
 	f.BoolVar(&o.asJSON, "json", false, "print the scores as JSON, one object a line")
 	f.BoolVar(&o.allowRefused, "allow-refused", false, "exit with status 0 although measurements were refused")
+	f.StringVar(&o.diagnose, "diagnose", diagnoseAuto, "try the opening again with each usual mistake undone: always, never, or auto, when the run is suspect")
+	f.StringVar(&o.explain, "explain", "", "say which measurement moved the belief how much around this time: RFC 3339, or seconds after the first measurement")
+	f.DurationVar(&o.explainWithin, "explain-within", 2*time.Second, "how far around that time")
 	f.IntVar(&o.maxCells, "max-cells", 0, "greatest number of cells of a belief; decides how finely a wide start is searched (0: the session's default)")
 	return c
 }
@@ -51,6 +58,9 @@ func replayCommand() *cobra.Command {
 func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
 	if o.maxCells < 0 {
 		return fmt.Errorf("--max-cells is %d: it must be positive", o.maxCells)
+	}
+	if err := o.checkStudies(); err != nil {
+		return err
 	}
 	names := map[string]string{}
 	for _, path := range paths {
@@ -77,10 +87,17 @@ func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
 				return err
 			}
 		}
+		why, err := o.study(c.ErrOrStderr(), run, path)
+		if err != nil {
+			return err
+		}
 		if o.asJSON {
-			err = printJSONLine(c.OutOrStdout(), run.score)
+			err = printJSONLine(c.OutOrStdout(), struct {
+				*score.Score
+				*studies
+			}{run.score, why})
 		} else {
-			err = printScore(c.OutOrStdout(), run.score, run.result)
+			err = errors.Join(printScore(c.OutOrStdout(), run.score, run.result), why.print(c.OutOrStdout()))
 		}
 		if err != nil {
 			return err
@@ -99,6 +116,10 @@ type driveRun struct {
 	track  *track.Track
 	score  *score.Score
 	result *replay.Result
+	// What it was made of, for studies.
+	drive  *drivefile.Drive
+	config session.Config
+	record *diagnose.Record
 }
 
 func (o *replayOptions) replay(errs io.Writer, maps map[string]*mapFile, path string) (*driveRun, error) {
@@ -124,7 +145,9 @@ func (o *replayOptions) replay(errs io.Writer, maps map[string]*mapFile, path st
 		return nil, err
 	}
 	show, end := progress(errs, driveName(path))
-	res, err := replay.Run(d, session.Config{Space: m.Space, Names: m.Names, Suite: suite, MaxCells: o.maxCells}, replay.Options{Progress: show})
+	config := session.Config{Space: m.Space, Names: m.Names, Suite: suite, MaxCells: o.maxCells}
+	var record diagnose.Record
+	res, err := replay.Run(d, config, replay.Options{Progress: show, Watch: record.Add})
 	end()
 	if err != nil {
 		return nil, fmt.Errorf("%s: %w", path, err)
@@ -137,7 +160,10 @@ func (o *replayOptions) replay(errs io.Writer, maps map[string]*mapFile, path st
 	if err != nil {
 		return nil, fmt.Errorf("%s: comparing with the truth: %w", path, err)
 	}
-	return &driveRun{m, &track.Track{Drive: driveName(path), Posteriors: res.Posteriors, Truth: truth}, s, res}, nil
+	return &driveRun{
+		m, &track.Track{Drive: driveName(path), Posteriors: res.Posteriors, Truth: truth}, s, res,
+		d, config, &record,
+	}, nil
 }
 
 // write writes a run's files into a folder.
