@@ -52,7 +52,7 @@ func TestBadInput(t *testing.T) {
 		"no such command":      {[]string{"mop"}, []string{"mop", "--help"}},
 		"unknown flag":         {[]string{"replay", ok, "--mop", town}, []string{"--mop", "leadline replay --help"}},
 		"a flag's value":       {[]string{"map", "roads", ok, "-o", out, "--cell", "wide"}, []string{"wide", "--cell", "--help"}},
-		"missing argument":     {[]string{"where"}, []string{"accepts 1 arg", "leadline where --help"}},
+		"missing argument":     {[]string{"where"}, []string{"at least 1 arg", "leadline where --help"}},
 		"missing output":       {[]string{"map", "roads", ok}, []string{"output", "leadline map roads --help"}},
 		"no such drive":        {[]string{"replay", filepath.Join(dir, "none.drive.jsonl"), "--map", town}, []string{"none.drive.jsonl", "check the path"}},
 		"no such map":          {[]string{"replay", ok, "--map", filepath.Join(dir, "none.roads.arrow")}, []string{"none.roads.arrow", "leadline map roads"}},

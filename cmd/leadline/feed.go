@@ -197,6 +197,9 @@ func checkAddress(flag, address string) error {
 // serverError words what a call ended with: what the server said, or that it
 // could not be reached.
 func serverError(err error, address string) error {
+	if why, ok := client.WhyOf(err); ok {
+		return fmt.Errorf("%s (%s)", oneLine(why.Message), reasonName(why.Reason))
+	}
 	st, ok := status.FromError(err)
 	if !ok {
 		return err

@@ -112,5 +112,8 @@ func words(name, prefix string) string {
 
 // reasonText is a refusal's reason in the session's words.
 func reasonText(r leadlinev1.Reason) session.Reason {
-	return session.Reason(words(r.String(), "REFUSAL_REASON_"))
+	return session.Reason(words(r.String(), "REASON_"))
 }
+
+// reasonName is a reason as errors of the API have it.
+func reasonName(r leadlinev1.Reason) string { return strings.TrimPrefix(r.String(), "REASON_") }

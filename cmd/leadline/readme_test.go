@@ -189,6 +189,11 @@ func TestReadmeNames(t *testing.T) {
 			t.Errorf("README.md does not explain the reason `%s`", r)
 		}
 	}
+	for _, r := range leadlinev1.Reason_name {
+		if r != "REASON_UNSPECIFIED" {
+			wantWords(t, page, "reason of the API", []string{strings.TrimPrefix(r, "REASON_")})
+		}
+	}
 	var figures []string
 	for _, k := range keys(reflect.TypeFor[score.Score](), "json") {
 		figures = append(figures, strings.TrimSuffix(k, "_all"))

@@ -3,6 +3,7 @@ package main
 import (
 	"context"
 	"fmt"
+	"io"
 	"strings"
 	"time"
 
@@ -16,6 +17,7 @@ import (
 type whereOptions struct {
 	at, area string
 	asJSON   bool
+	now      bool
 	regions  []float64
 	risk     float64
 	timeout  time.Duration
@@ -24,14 +26,15 @@ type whereOptions struct {
 func whereCommand() *cobra.Command {
 	var o whereOptions
 	c := &cobra.Command{
-		Use:   "where VEHICLE --at ADDR",
-		Short: "Ask a server where a vehicle is",
-		Args:  cobra.ExactArgs(1),
-		RunE:  func(c *cobra.Command, args []string) error { return where(c, &o, args[0]) },
+		Use:   "where VEHICLE... --at ADDR",
+		Short: "Ask a server where vehicles are",
+		Args:  cobra.MinimumNArgs(1),
+		RunE:  func(c *cobra.Command, args []string) error { return where(c, &o, args) },
 	}
 	f := c.Flags()
 	f.StringVar(&o.at, "at", defaultAddress, "address of the server")
-	f.BoolVar(&o.asJSON, "json", false, "print the answer as JSON, regions as polygons")
+	f.BoolVar(&o.asJSON, "json", false, "print each answer as JSON, regions as polygons")
+	f.BoolVar(&o.now, "now", false, "carry the belief on to the present, instead of the last measurement")
 	f.Float64SliceVar(&o.regions, "region", nil, "percentage whose smallest region is wanted, such as 95; repeat for several")
 	f.Float64Var(&o.risk, "risk", 0, "integrity risk of the protection radius (default: the suite's)")
 	f.StringVar(&o.area, "area", "", "GeoJSON file with one polygon whose probability is wanted")
@@ -39,8 +42,8 @@ func whereCommand() *cobra.Command {
 	return c
 }
 
-func where(c *cobra.Command, o *whereOptions, vehicle string) error {
-	req := &leadlinev1.WhereRequest{Vehicles: []string{vehicle}}
+func where(c *cobra.Command, o *whereOptions, vehicles []string) error {
+	req := &leadlinev1.WhereRequest{Vehicles: vehicles, PredictToNow: o.now}
 	for _, percent := range o.regions {
 		if !(percent > 0 && percent < 100) {
 			return fmt.Errorf("--region is %v: give a percentage above 0 and below 100", percent)
@@ -70,13 +73,37 @@ func where(c *cobra.Command, o *whereOptions, vehicle string) error {
 	if err != nil {
 		return serverError(err, o.at)
 	}
-	answer := resp.GetAnswers()[0]
-	w := c.OutOrStdout()
-	if o.asJSON {
-		return printMessage(w, answer)
+	var failed error
+	missing := 0
+	for _, answer := range resp.GetAnswers() {
+		if f := answer.GetFailure(); f != nil {
+			if missing++; missing == 1 {
+				failed = fmt.Errorf("%s (%s)", oneLine(f.GetMessage()), reasonName(f.GetReason()))
+			}
+		}
+		switch {
+		case o.asJSON:
+			err = printMessage(c.OutOrStdout(), answer)
+		case answer.GetFailure() == nil:
+			o.print(c.OutOrStdout(), answer)
+		}
+		if err != nil {
+			return err
+		}
 	}
+	if missing > 0 && len(vehicles) > 1 {
+		return fmt.Errorf("%d of %d vehicles have no answer, first: %w", missing, len(vehicles), failed)
+	}
+	return failed
+}
+
+// print prints the answer for one vehicle.
+func (o *whereOptions) print(w io.Writer, answer *leadlinev1.WhereAnswer) {
 	p := answer.GetPosterior()
 	printPosterior(w, p)
+	if s := p.GetPredictedS(); s > 0 {
+		fmt.Fprintf(w, "  %-14s %.1f s beyond the last measurement, by how the vehicle may move\n", "carried on", s)
+	}
 	for _, r := range p.GetRegions() {
 		fmt.Fprintf(w, "  %-14s %.4g %% within %.0f m² in %d pieces (polygons with --json)\n", "region", 100*r.GetProbability(), r.GetAreaM2(), len(r.GetPolygons()))
 	}
@@ -88,5 +115,4 @@ func where(c *cobra.Command, o *whereOptions, vehicle string) error {
 		state = "has ended"
 	}
 	fmt.Fprintf(w, "  %-14s %s, %s; sha256 of what is final %s\n", "drive", state, strings.ToLower(durability(p)), answer.GetPosteriorSha256())
-	return nil
 }
