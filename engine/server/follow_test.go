@@ -45,6 +45,22 @@ func bring(t *testing.T, st followStream) *leadlinev1.FollowResponse {
 	return m
 }
 
+// opened opens a drive and sends the first event.
+func opened(t *testing.T, conn *grpc.ClientConn, d client.Drive, first sensor.Event) *client.Feed {
+	t.Helper()
+	feed, err := client.Open(limited(t), conn, d)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if err := feed.Send(wire.FromEvent(first)); err != nil {
+		t.Fatal(err)
+	}
+	if err := feed.Flush(); err != nil {
+		t.Fatal(err)
+	}
+	return feed
+}
+
 // incoming are a stream's updates, as they come in.
 func incoming(st followStream) <-chan *leadlinev1.FollowResponse {
 	c := make(chan *leadlinev1.FollowResponse, 10000)
@@ -155,10 +171,17 @@ func TestSlowFollower(t *testing.T) {
 	st, cancel := following(t, conn, &leadlinev1.FollowRequest{})
 	defer cancel()
 	evs := voyage(4, 5000)
-	if _, err := fed(limited(t), conn, client.Drive{Header: header("v"), Batch: 500}, evs); err != nil {
+	feed := opened(t, conn, client.Drive{Header: header("v"), Batch: 500}, evs[0])
+	bring(t, st)
+	for _, ev := range evs[1:] {
+		if err := feed.Send(wire.FromEvent(ev)); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if _, err := feed.Close(); err != nil {
 		t.Fatal(err)
 	}
-	told, skipped := 0, 0
+	told, skipped := 1, 0
 	for {
 		m := bring(t, st)
 		skipped += int(m.GetSkipped())
@@ -187,11 +210,20 @@ func TestFollowResumes(t *testing.T) {
 			evs = append(evs, ev)
 		}
 	}
+	feed := opened(t, conn, client.Drive{Header: header("v"), Batch: 3, Window: 1}, evs[0])
 	done := make(chan error, 1)
-	go func() {
-		_, err := fed(limited(t), conn, client.Drive{Header: header("v"), Batch: 3, Window: 1}, evs)
-		done <- err
-	}()
+	begin := sync.OnceFunc(func() { // once the follower is there, to count all
+		go func() {
+			for _, ev := range evs[1:] {
+				if err := feed.Send(wire.FromEvent(ev)); err != nil {
+					done <- err
+					return
+				}
+			}
+			_, err := feed.Close()
+			done <- err
+		}()
+	})
 	req := &leadlinev1.FollowRequest{Vehicles: []string{"v"}}
 	seen := map[time.Time]bool{}
 	told, skipped, breaks := 0, 0, 0
@@ -210,6 +242,7 @@ func TestFollowResumes(t *testing.T) {
 			}
 			seen[at] = true
 			told++
+			begin()
 		}
 		cancel()
 	}
