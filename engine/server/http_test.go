@@ -12,6 +12,8 @@ import (
 
 	"connectrpc.com/connect/v2"
 	"connectrpc.com/connect/v2/connecthttp"
+	"connectrpc.com/connect/v2/connectproto"
+	"google.golang.org/genproto/googleapis/rpc/errdetails"
 	"google.golang.org/grpc"
 	healthv1 "google.golang.org/grpc/health/grpc_health_v1"
 	"google.golang.org/protobuf/encoding/protojson"
@@ -141,4 +143,59 @@ func TestShutdownCutsOffHTTP(t *testing.T) {
 	}
 	for st.Receive(&m) == nil { // the last word may be that it does not serve
 	}
+}
+
+// TestFollowOverHTTP proves that a page can follow a vehicle to its drive's end,
+// and is told when the server stops.
+func TestFollowOverHTTP(t *testing.T) {
+	s, conn := serve(t, Config{NewSession: newTally})
+	c := connect.NewClient(connecthttp.NewTransport(byHTTP(), "http://"+conn.Target()))
+	st, err := c.CallServerStream(limited(t), connect.Spec{StreamType: connect.StreamTypeServer, Procedure: leadlinev1.PositionService_Follow_FullMethodName}, &leadlinev1.FollowRequest{Vehicles: []string{"v"}})
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer st.Close()
+	evs := voyage(2, 10)
+	if _, err := fed(limited(t), conn, client.Drive{Header: header("v"), Batch: 3}, evs); err != nil {
+		t.Fatal(err)
+	}
+	posteriors := 0
+	for {
+		var m leadlinev1.FollowResponse
+		if err := st.Receive(&m); err != nil {
+			t.Fatal(err)
+		}
+		if f := m.GetFarewell(); f != nil {
+			if f.GetPosteriorSha256() != tallied(evs) || posteriors == 0 {
+				t.Errorf("after %d posteriors: %v, want the hash %s", posteriors, f, tallied(evs))
+			}
+			break
+		}
+		posteriors++
+	}
+	stopped := make(chan error, 1)
+	go func() { stopped <- s.Shutdown(limited(t)) }()
+	err = st.Receive(&leadlinev1.FollowResponse{})
+	if code := connect.CodeOf(err); code != connect.CodeUnavailable {
+		t.Errorf("the stream ended with %v", err)
+	} else if info := reasonOf(t, err); info.GetReason() != "STOPPING" {
+		t.Errorf("the stream ended for %v", info)
+	}
+	if err := <-stopped; err != nil {
+		t.Errorf("shutdown: %v", err)
+	}
+}
+
+// reasonOf reads the reason out of Connect's error.
+func reasonOf(t *testing.T, err error) *errdetails.ErrorInfo {
+	t.Helper()
+	var ce *connect.Error
+	if !errors.As(err, &ce) || len(ce.Details()) != 1 {
+		t.Fatalf("%v has no reason", err)
+	}
+	m, err := connectproto.UnmarshalErrorDetail(ce.Details()[0])
+	if err != nil {
+		t.Fatal(err)
+	}
+	return m.(*errdetails.ErrorInfo)
 }
