@@ -73,7 +73,8 @@ export declare type BeliefGrid = Message<"leadline.v1.BeliefGrid"> & {
   /**
    * Middles of the outermost cells: first row and column, first row and last
    * column, last row and first column, last row and column. Between them
-   * positions are bilinear to well within a cell.
+   * positions are bilinear, to 5 m over 10 km and 500 m over 100 km up to 65
+   * degrees of latitude.
    *
    * @generated from field: leadline.v1.Position first = 3;
    */
@@ -117,7 +118,7 @@ export declare type BeliefGrid = Message<"leadline.v1.BeliefGrid"> & {
 export declare const BeliefGridSchema: GenMessage<BeliefGrid>;
 
 /**
- * BeliefStretch is a run of cells along a directed edge. At most 8192 cells are
+ * BeliefStretch is a run of cells along a directed edge. At most 4096 cells are
  * told, the heaviest ones.
  *
  * @generated from message leadline.v1.BeliefStretch
