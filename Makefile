@@ -77,7 +77,7 @@ else
 	$(BUF) lint proto
 	rm -rf build/_generated
 	$(BUF) generate proto --template proto/buf.gen.yaml -o build/_generated
-	diff -r -x '*.proto' -x 'buf*.yaml' -x 'doc.go' -x '*_test.go' proto build/_generated/proto
+	diff -r -x '*.proto' -x 'buf*.yaml' -x 'doc.go' -x '*_test.go' -x testdata proto build/_generated/proto
 endif
 
 # format rewrites; format-check names what is not formatted and fails.
