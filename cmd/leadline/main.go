@@ -69,7 +69,7 @@ Exit status: 0 done, 1 the answer is a failure, 2 wrong use or bad input.`,
 	root.SetFlagErrorFunc(func(c *cobra.Command, err error) error {
 		return fmt.Errorf("%w; see `%s --help`", err, c.CommandPath())
 	})
-	root.AddCommand(mapCommand(), importCommand(), replayCommand(), serveCommand(), feedCommand(), whereCommand(), demoCommand(), suiteCommand())
+	root.AddCommand(mapCommand(), importCommand(), replayCommand(), serveCommand(), feedCommand(), whereCommand(), followCommand(), vehiclesCommand(), endCommand(), demoCommand(), suiteCommand())
 	for _, c := range append(root.Commands(), root) {
 		helpForWrongArgs(c)
 	}

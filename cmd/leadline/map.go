@@ -17,8 +17,8 @@ import (
 )
 
 func mapCommand() *cobra.Command {
-	c := &cobra.Command{Use: "map", Short: "Compile and check maps"}
-	c.AddCommand(mapRoadsCommand(), mapHeightsCommand(), mapCheckCommand())
+	c := &cobra.Command{Use: "map", Short: "Compile, check and send maps"}
+	c.AddCommand(mapRoadsCommand(), mapHeightsCommand(), mapCheckCommand(), mapListCommand(), mapSendCommand())
 	return c
 }
 

@@ -24,6 +24,7 @@ const defaultAddress = "127.0.0.1:7700"
 type serveOptions struct {
 	maps, suites        []string
 	origins             []string
+	uploads             string
 	listen              string
 	plainBeyondLoopback bool
 	maxCells, vehicles  int
@@ -45,8 +46,8 @@ Nothing is durable yet: a server that stops forgets its vehicles.`,
 	}
 	f := c.Flags()
 	f.StringArrayVar(&o.maps, "map", nil, "compiled map as NAME=FILE, or FILE alone for its own name; repeat for several")
-	must(c.MarkFlagRequired("map"))
 	f.StringArrayVar(&o.suites, "suite", nil, "suite as NAME=FILE, or FILE alone; repeat for several; the starter suites are always there")
+	f.StringVar(&o.uploads, "uploads", "", "folder that keeps maps which clients send; none are taken without it")
 	f.StringVar(&o.listen, "listen", defaultAddress, "address to listen on; port 0 takes a free one")
 	f.BoolVar(&o.plainBeyondLoopback, "plain-text-beyond-loopback", false, "listen without encryption or login on an address that other machines reach")
 	f.StringArrayVar(&o.origins, "origin", nil, "origin whose pages may call from a browser, such as https://map.example; repeat for several")
@@ -78,11 +79,7 @@ func serve(c *cobra.Command, o *serveOptions) error {
 	}
 	stop, release := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
 	defer release()
-	var names []string
-	for _, m := range cfg.Maps {
-		names = append(names, m.Name)
-	}
-	fmt.Fprintf(c.OutOrStdout(), "listening on %s, maps: %s\n", l.Addr(), strings.Join(names, ", "))
+	fmt.Fprintf(c.OutOrStdout(), "listening on %s, maps: %s\n", l.Addr(), strings.Join(s.MapNames(), ", "))
 	done := make(chan error, 1)
 	go func() { done <- s.Serve(l) }()
 	select {
@@ -116,7 +113,10 @@ func (o *serveOptions) config() (cfg *server.Config, closeMaps func(), err error
 			return nil, closeMaps, err
 		}
 		opened = append(opened, m)
-		cfg.Maps = append(cfg.Maps, server.Map{Name: name, Space: m.Space, Names: m.Names})
+		cfg.Maps = append(cfg.Maps, m.served(name))
+	}
+	if o.uploads != "" {
+		cfg.Uploads = uploadsTo(o.uploads)
 	}
 	for _, name := range sensor.StarterNames() {
 		if cfg.Suites[name], err = openSuite(name); err != nil {

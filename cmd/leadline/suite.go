@@ -1,8 +1,10 @@
 package main
 
 import (
+	"context"
 	"errors"
 	"fmt"
+	"io"
 	"io/fs"
 	"os"
 	"path/filepath"
@@ -12,14 +14,27 @@ import (
 	"github.com/spf13/cobra"
 
 	"leadline/engine/sensor"
+	leadlinev1 "leadline/proto/leadline/v1"
 )
 
 func suiteCommand() *cobra.Command {
-	return &cobra.Command{
+	var at string
+	var heights bool
+	c := &cobra.Command{
 		Use:   "suite [NAME]",
 		Short: "Print a starter suite to copy and change, or list them",
-		Args:  cobra.MaximumNArgs(1),
+		Long: `Suite prints a starter suite, or lists them. With --at it prints or lists those
+of a server, which are written with their defaults filled in.`,
+		Args: cobra.MaximumNArgs(1),
 		RunE: func(c *cobra.Command, args []string) error {
+			if at != "" {
+				return asking(at, func(ctx context.Context, s leadlinev1.PositionServiceClient) error {
+					return serverSuite(ctx, c.OutOrStdout(), s, args, heights)
+				})
+			}
+			if heights {
+				return errors.New("--heights goes with --at: a starter is printed as it was written")
+			}
 			if len(args) == 0 {
 				fmt.Fprintln(c.OutOrStdout(), strings.Join(sensor.StarterNames(), "\n"))
 				return nil
@@ -32,6 +47,30 @@ func suiteCommand() *cobra.Command {
 			return err
 		},
 	}
+	c.Flags().StringVar(&at, "at", "", "address of a server whose suites are wanted")
+	c.Flags().BoolVar(&heights, "heights", false, "with the defaults for height maps; those for roads otherwise")
+	return c
+}
+
+// serverSuite prints a suite of a server, or lists them.
+func serverSuite(ctx context.Context, w io.Writer, s leadlinev1.PositionServiceClient, args []string, heights bool) error {
+	if len(args) == 0 {
+		r, err := s.ListSuites(ctx, &leadlinev1.ListSuitesRequest{})
+		for _, name := range r.GetSuites() {
+			fmt.Fprintln(w, oneLine(name))
+		}
+		return err
+	}
+	req := &leadlinev1.DescribeSuiteRequest{Suite: args[0], Kind: leadlinev1.MapKind_MAP_KIND_ROADS}
+	if heights {
+		req.Kind = leadlinev1.MapKind_MAP_KIND_HEIGHTS
+	}
+	r, err := s.DescribeSuite(ctx, req)
+	if err != nil {
+		return err
+	}
+	_, err = fmt.Fprintf(w, "# sha256 %s\n%s", r.GetFingerprint(), r.GetYaml())
+	return err
 }
 
 // starter returns a starter suite's text.

@@ -1,0 +1,149 @@
+package main
+
+import (
+	"context"
+	"fmt"
+	"io"
+	"os"
+	"os/signal"
+	"strings"
+	"syscall"
+
+	"github.com/spf13/cobra"
+
+	"leadline/engine/client"
+	leadlinev1 "leadline/proto/leadline/v1"
+	"leadline/terrain/heightfile"
+)
+
+func mapListCommand() *cobra.Command {
+	var at string
+	var asJSON bool
+	c := &cobra.Command{
+		Use:   "list [NAME] --at ADDR",
+		Short: "List the maps of a server, or say what one of them is",
+		Args:  cobra.MaximumNArgs(1),
+		RunE: func(c *cobra.Command, args []string) error {
+			return asking(at, func(ctx context.Context, s leadlinev1.PositionServiceClient) error {
+				w := c.OutOrStdout()
+				if len(args) == 1 {
+					r, err := s.DescribeMap(ctx, &leadlinev1.DescribeMapRequest{Map: args[0]})
+					if err != nil {
+						return err
+					}
+					if asJSON {
+						return printMessage(w, r.GetMap())
+					}
+					printMap(w, r.GetMap())
+					return nil
+				}
+				r, err := s.ListMaps(ctx, &leadlinev1.ListMapsRequest{})
+				if err != nil {
+					return err
+				}
+				if asJSON {
+					return printMessage(w, r)
+				}
+				for _, m := range r.GetMaps() {
+					fmt.Fprintf(w, "%s: %s, %s\n", oneLine(m.GetName()), mapSize(m), vehiclesOn(m))
+				}
+				return nil
+			})
+		},
+	}
+	c.Flags().StringVar(&at, "at", defaultAddress, "address of the server")
+	c.Flags().BoolVar(&asJSON, "json", false, "print the answer as JSON")
+	return c
+}
+
+// mapSize says in a few words what a map is made of.
+func mapSize(m *leadlinev1.MapDescription) string {
+	if m.GetKind() == leadlinev1.MapKind_MAP_KIND_ROADS {
+		return fmt.Sprintf("%d directed edges, %.1f km", m.GetEdges(), m.GetLengthM()/1e3)
+	}
+	return fmt.Sprintf("heights, %d × %d, %.4g m apart", m.GetColumns(), m.GetRows(), m.GetSpacingM())
+}
+
+func vehiclesOn(m *leadlinev1.MapDescription) string {
+	text := fmt.Sprintf("%d drives on it", m.GetSessions())
+	if n := m.GetOlderSessions(); n > 0 {
+		text += fmt.Sprintf(", %d on an older one", n)
+	}
+	return text
+}
+
+func printMap(w io.Writer, m *leadlinev1.MapDescription) {
+	line := func(label, format string, args ...any) {
+		fmt.Fprintf(w, "  %-14s %s\n", label, oneLine(fmt.Sprintf(format, args...)))
+	}
+	fmt.Fprintf(w, "%s: %s\n", oneLine(m.GetName()), mapSize(m))
+	line("fingerprint", "%s", m.GetFingerprint())
+	line("within", "lon %.6f to %.6f, lat %.6f to %.6f", m.GetSouthWest().GetLon(), m.GetNorthEast().GetLon(), m.GetSouthWest().GetLat(), m.GetNorthEast().GetLat())
+	line("frame", "%s", m.GetFrame())
+	if d := m.GetVerticalDatum(); d != "" {
+		sigma := "sigma unstated"
+		if m.GetHeightSigmaM() > 0 {
+			sigma = fmt.Sprintf("sigma %.3g m", m.GetHeightSigmaM())
+		}
+		line("heights", "above %s, %s", d, sigma)
+	}
+	line("source", "%s", m.GetSource())
+	line("licence", "%s", m.GetLicence())
+	line("in use", "%s", vehiclesOn(m))
+}
+
+func mapSendCommand() *cobra.Command {
+	var at, name string
+	var replace bool
+	c := &cobra.Command{
+		Use:   "send MAP --at ADDR",
+		Short: "Upload a compiled map to a server that takes maps",
+		Long: `Send uploads a compiled map to a server that was started with --uploads. New
+drives can use it at once; those that are open keep the one they have.`,
+		Args: cobra.ExactArgs(1),
+		RunE: func(c *cobra.Command, args []string) error { return sendMap(c, at, args[0], name, replace) },
+	}
+	c.Flags().StringVar(&at, "at", defaultAddress, "address of the server")
+	c.Flags().StringVar(&name, "name", "", "name of the map at the server (default: the file's)")
+	c.Flags().BoolVar(&replace, "replace", false, "take the place of the map that has the name")
+	return c
+}
+
+func sendMap(c *cobra.Command, at, path, name string, replace bool) error {
+	m, err := openMap(path) // what is damaged need not be sent
+	if err != nil {
+		return err
+	}
+	m.Close()
+	b := &leadlinev1.MapBeginning{Name: name, Kind: leadlinev1.MapKind_MAP_KIND_ROADS, Replace: replace}
+	if name == "" {
+		b.Name = mapName(path)
+	}
+	if strings.HasSuffix(path, heightfile.Suffix) {
+		b.Kind = leadlinev1.MapKind_MAP_KIND_HEIGHTS
+	}
+	file, err := os.Open(path)
+	if err != nil {
+		return err
+	}
+	defer file.Close()
+	conn, err := dial("--at", at)
+	if err != nil {
+		return err
+	}
+	defer conn.Close()
+	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
+	defer stop()
+	show, end := progress(c.ErrOrStderr(), b.Name)
+	sent, err := client.SendMap(ctx, conn, b, file, func(sent, of int64) {
+		if show != nil {
+			show(int(sent), int(of))
+		}
+	})
+	end()
+	if err != nil {
+		return fmt.Errorf("%s: %w", path, serverError(err, at))
+	}
+	printMap(c.OutOrStdout(), sent)
+	return nil
+}
