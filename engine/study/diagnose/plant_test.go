@@ -84,6 +84,24 @@ func fittedCar(t testing.TB, seed uint64) *scene {
 	return s
 }
 
+// hillyCar drives over hills with a barometer.
+func hillyCar(t testing.TB, seed uint64) *scene {
+	return car(t, seed, 120, func(o *sim.CarOptions) {
+		o.Odometer.Hz, o.Gyro.Hz = 1, 1
+		o.Heights, o.Barometer = hills(), sim.Altimeter{Hz: 1, NoiseM: 2}
+	})
+}
+
+// hearingCar takes bearings to three beacons.
+func hearingCar(t testing.TB, seed uint64) *scene {
+	return car(t, seed, 120, func(o *sim.CarOptions) {
+		o.Odometer.Hz, o.Gyro.Hz = 1, 1
+		o.Beacons = sim.Beacons{ReachM: 3000, BearingDeg: 2, Places: []sim.Place{
+			{ID: "a", LonDeg: -30.008, LatDeg: 45.004}, {ID: "b", LonDeg: -29.99, LatDeg: 45.006}, {ID: "c", LonDeg: -29.998, LatDeg: 44.994},
+		}}
+	})
+}
+
 func flyer(t testing.TB, seed uint64) *scene { return flight(t, seed, 50, nil) }
 
 // agile turns every few seconds, with good instruments: a second shows.
@@ -102,6 +120,9 @@ var plants = []plant{
 	{name: "car: compass 1 s early", scene: fittedCar, spoil: late("compass", -1), want: "times early", value: -1},
 	{name: "car: fixes swapped", scene: fittedCar, spoil: each(func(m *sensor.Fix) { m.Position.Lon, m.Position.Lat = m.Position.Lat, m.Position.Lon }), want: "longitude and latitude swapped", shortS: 60},
 	{name: "car: compass, declination 12°", scene: fittedCar, spoil: each(func(m *sensor.HeadingFix) { m.HeadingRad -= geo.Rad(12) }), want: "directions from another north", value: 12, within: 2, shortS: 60},
+	{name: "car: barometer in feet", scene: hillyCar, spoil: each(func(m *sensor.Barometer) { m.AltitudeM /= 0.3048 }), want: "altitude in feet"},
+	{name: "car: barometer 35 m low", scene: hillyCar, spoil: each(func(m *sensor.Barometer) { m.AltitudeM -= 35 }), want: "vertical datum off", value: -35, within: 3},
+	{name: "car: bearings, declination −10°", scene: hearingCar, spoil: each(func(m *sensor.Bearing) { m.BearingRad += geo.Rad(10) }), want: "directions from another north", value: -10, within: 2},
 	{name: "flight: altitude in feet", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM /= 0.3048 }), want: "altitude in feet", shortS: 30},
 	{name: "flight: both in feet", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM /= 0.3048; m.ClearanceM /= 0.3048 }), want: "altitude and clearance in feet"},
 	{name: "flight: converted as if feet", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM *= 0.3048; m.ClearanceM *= 0.3048 }), want: "altitude and clearance in metres, but converted as if from feet", shortS: 30},
@@ -142,6 +163,8 @@ var gridDeg = geo.Deg(invented.Convergence(atlantic))
 var unspoiled = []plant{
 	{name: "plain car", scene: plainCar},
 	{name: "fitted car", scene: fittedCar, shortS: 120},
+	{name: "car over hills", scene: hillyCar},
+	{name: "car with bearings", scene: hearingCar},
 	{name: "flight", scene: flyer, shortS: 30},
 	{name: "agile flight", scene: agile},
 	{name: "survey", scene: surveyor},

@@ -97,15 +97,15 @@ func over(r *terrain.Raster) *plane.Plane {
 // car drives through an invented town.
 func car(t testing.TB, seed uint64, durationS float64, edit func(*sim.CarOptions)) *scene {
 	t.Helper()
-	m, w, err := towns[seed%4]().HandOver(seed, sim.Flaws{}, network.Options{Source: "invented", Licence: "Apache-2.0"})
-	must(t, m, err)
-	w, err = w.Disturb(seed, sim.MapErrorM, sim.MapErrorLengthM)
-	must(t, w, err)
 	o := sim.StandardCar()
 	o.DurationS, o.StartSigmaM = durationS, 10
 	if edit != nil {
 		edit(&o)
 	}
+	m, w, err := towns[seed%4]().HandOver(seed, sim.Flaws{}, network.Options{Heights: o.Heights, HeightSigmaM: 1, Source: "invented", Licence: "Apache-2.0"})
+	must(t, m, err)
+	w, err = w.Disturb(seed, sim.MapErrorM, sim.MapErrorLengthM)
+	must(t, w, err)
 	d, err := w.Drive(seed, o)
 	must(t, d, err)
 	c := drives.Convert(d, "town", "")
