@@ -105,7 +105,9 @@ func TestBadInput(t *testing.T) {
 		"region":            {[]string{"where", "van", "--region", "100"}, []string{"--region", "100"}},
 		"no area file":      {[]string{"where", "van", "--area", filepath.Join(dir, "none.json")}, []string{"--area", "none.json", "check the path"}},
 		"an area of points": {[]string{"where", "van", "--area", file("point.json", `{"type":"Point","coordinates":[1,2]}`)}, []string{"point.json", "Point", "Polygon"}},
-		"a demo's roads":    {[]string{"demo", "--roads", filepath.Join(dir, "none.json"), "--dir", dir}, []string{"--roads", "none.json"}},
+		"a demo's roads":    {[]string{"demo", "--roads", filepath.Join(dir, "none.json"), "--out", dir}, []string{"--roads", "none.json"}},
+		"two demos":         {[]string{"demo", "--andorra", "--roads", ok}, []string{"--andorra", "--roads", "one of them"}},
+		"turns of a scene":  {[]string{"demo", "--turns", "3"}, []string{"--turns", "--andorra"}},
 	} {
 		t.Run(name, func(t *testing.T) { bad(t, c.words, c.args...) })
 	}

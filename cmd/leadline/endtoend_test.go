@@ -8,7 +8,6 @@ import (
 	"testing"
 
 	"leadline/engine/drivefile"
-	"leadline/engine/study/replay"
 	"leadline/fixtures/sim"
 )
 
@@ -190,27 +189,6 @@ func TestHeightsEndToEnd(t *testing.T) {
 	readJSON(t, good(t, "feed", drivePath, "--to", srv.address, "--map", "hills", "--speed", "100", "--json"), &closed)
 	if closed.PosteriorSHA256 != s.Hash {
 		t.Errorf("the server's hash is %s, replay's %s", closed.PosteriorSHA256, s.Hash)
-	}
-}
-
-// TestDemo runs the README's first command over a town of our own; with
-// Andorra it takes half a minute.
-func TestDemo(t *testing.T) {
-	t.Parallel()
-	dir := t.TempDir()
-	text := good(t, "demo", "--dir", dir, "--turns", "4", "--roads", townJSON(t, filepath.Join(dir, "harbour.json"), 5, 4))
-	for _, want := range []string{"INVENTED", "bit for bit", "not certified", "van-7 is ", "leadline serve --map harbour="} {
-		if !strings.Contains(text, want) {
-			t.Errorf("the demo does not say %q:\n%s", want, text)
-		}
-	}
-	for _, name := range []string{"harbour.png", "given/van-7/track.png", "given/aircraft-2/track.png"} {
-		needPNG(t, filepath.Join(dir, filepath.FromSlash(name)), 4)
-	}
-	// What it left can be used.
-	d, err := readDrive(filepath.Join(dir, "van-7"+drivefile.Suffix))
-	if err != nil || len(replay.Truth(d)) == 0 {
-		t.Errorf("the drive file: %v, %d truths", err, len(replay.Truth(d)))
 	}
 }
 

@@ -65,6 +65,7 @@ heard is sent, and the drive is ended. A second signal stops at once.`,
 	f.BoolVar(&o.allowRefused, "allow-refused", false, "exit with status 0 although measurements were refused")
 	o.headerOptions.flags(c)
 	o.liveOptions.flags(c)
+	settable(c, "to=server")
 	return c
 }
 

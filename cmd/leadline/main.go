@@ -7,14 +7,10 @@ import (
 	"fmt"
 	"io"
 	"os"
-	"runtime/debug"
 	"strings"
 
 	"github.com/spf13/cobra"
 )
-
-// version is set by the linker; see the Makefile.
-var version = ""
 
 // The exit statuses.
 const (
@@ -69,7 +65,7 @@ Exit status: 0 done, 1 the answer is a failure, 2 wrong use or bad input.`,
 	root.SetFlagErrorFunc(func(c *cobra.Command, err error) error {
 		return fmt.Errorf("%w; see `%s --help`", err, c.CommandPath())
 	})
-	root.AddCommand(mapCommand(), importCommand(), replayCommand(), serveCommand(), feedCommand(), whereCommand(), followCommand(), vehiclesCommand(), endCommand(), demoCommand(), suiteCommand())
+	root.AddCommand(mapCommand(), importCommand(), replayCommand(), serveCommand(), feedCommand(), whereCommand(), followCommand(), vehiclesCommand(), endCommand(), demoCommand(), suiteCommand(), versionCommand())
 	for _, c := range append(root.Commands(), root) {
 		helpForWrongArgs(c)
 	}
@@ -97,20 +93,6 @@ func helpForWrongArgs(c *cobra.Command) {
 	if c.HasSubCommands() && c.Run == nil && c.RunE == nil {
 		c.RunE = func(c *cobra.Command, _ []string) error { return c.Help() }
 	}
-}
-
-func versionText() string {
-	if version != "" {
-		return version
-	}
-	if info, ok := debug.ReadBuildInfo(); ok {
-		for _, s := range info.Settings {
-			if s.Key == "vcs.revision" && len(s.Value) >= 12 {
-				return s.Value[:12]
-			}
-		}
-	}
-	return "unknown"
 }
 
 // oneLine makes a line of a message, whatever a file brought into it.

@@ -13,6 +13,7 @@ import (
 	"github.com/spf13/cobra"
 
 	"leadline/engine/drivefile"
+	"leadline/engine/sensor"
 	"leadline/engine/session"
 	"leadline/engine/study/diagnose"
 	"leadline/engine/study/replay"
@@ -51,7 +52,8 @@ func replayCommand() *cobra.Command {
 	f.StringVar(&o.diagnose, "diagnose", diagnoseAuto, "try the opening again with each usual mistake undone: always, never, or auto, when the run is suspect")
 	f.StringVar(&o.explain, "explain", "", "say which measurement moved the belief how much around this time: RFC 3339, or seconds after the first measurement")
 	f.DurationVar(&o.explainWithin, "explain-within", 2*time.Second, "how far around that time")
-	f.IntVar(&o.maxCells, "max-cells", 0, "greatest number of cells of a belief; decides how finely a wide start is searched (0: the session's default)")
+	f.IntVar(&o.maxCells, "max-cells", defaultCells, "greatest number of cells of a belief; decides how finely a wide start is searched")
+	settable(c, "max-cells")
 	return c
 }
 
@@ -186,7 +188,21 @@ func (r *driveRun) write(dir string) error {
 }
 
 func (r *driveRun) picture(w io.Writer) error {
-	return r.track.Picture(w, track.Ground{Frame: r.m.Space.Frame(), Roads: r.m.lines(), Relief: r.m.field()})
+	return r.track.Picture(w, track.Ground{Frame: r.m.Space.Frame(), Roads: r.m.lines(), Relief: r.m.field(), Places: places(r.config.Suite)})
+}
+
+// places are a suite's posts and beacons.
+func places(s *sensor.Suite) (out []track.Place) {
+	if s == nil {
+		return nil
+	}
+	for _, p := range s.Posts {
+		out = append(out, track.Place{Name: p.ID, At: p.Position()})
+	}
+	for _, b := range s.Beacons {
+		out = append(out, track.Place{Name: b.ID, At: b.Position()})
+	}
+	return out
 }
 
 // readDrive reads a drive file whole.

@@ -1,15 +1,11 @@
 package main
 
 import (
-	"context"
 	"errors"
 	"fmt"
-	"log/slog"
 	"net"
 	"os"
-	"os/signal"
 	"strings"
-	"syscall"
 	"time"
 
 	"github.com/spf13/cobra"
@@ -21,18 +17,26 @@ import (
 // defaultAddress is where serve listens and feed and where ask.
 const defaultAddress = "127.0.0.1:7700"
 
+// Defaults that commands share.
+const (
+	defaultCells    = 200_000 // of a belief
+	defaultVehicles = 1000
+)
+
 type serveOptions struct {
 	maps, suites        []string
 	origins             []string
-	uploads             string
 	listen              string
 	plainBeyondLoopback bool
 	maxCells, vehicles  int
 	drainTimeout        time.Duration
+	logFormat, logLevel choice
+	printConfig         bool
 }
 
-func serveCommand() *cobra.Command {
-	var o serveOptions
+func serveCommand() *cobra.Command { return new(serveOptions).command() }
+
+func (o *serveOptions) command() *cobra.Command {
 	c := &cobra.Command{
 		Use:   "serve --map NAME=FILE...",
 		Short: "Take vehicles' measurements and say where they are, over gRPC",
@@ -40,61 +44,50 @@ func serveCommand() *cobra.Command {
 then it takes nothing new, answers what was sent, and stops. A second signal
 stops it at once.
 
+What is not a flag may come from the environment (LEADLINE_MAP for --map) or
+from a file (--config); --print-config shows what counts and where it came from.
+
 Nothing is durable yet: a server that stops forgets its vehicles.`,
 		Args: cobra.NoArgs,
-		RunE: func(c *cobra.Command, _ []string) error { return serve(c, &o) },
+		RunE: func(c *cobra.Command, _ []string) error { return serve(c, o) },
 	}
+	o.logFormat, o.logLevel = choice{"text", logFormats}, choice{"info", logLevels}
 	f := c.Flags()
 	f.StringArrayVar(&o.maps, "map", nil, "compiled map as NAME=FILE, or FILE alone for its own name; repeat for several")
 	f.StringArrayVar(&o.suites, "suite", nil, "suite as NAME=FILE, or FILE alone; repeat for several; the starter suites are always there")
-	f.StringVar(&o.uploads, "uploads", "", "folder that keeps maps which clients send; none are taken without it")
 	f.StringVar(&o.listen, "listen", defaultAddress, "address to listen on; port 0 takes a free one")
 	f.BoolVar(&o.plainBeyondLoopback, "plain-text-beyond-loopback", false, "listen without encryption or login on an address that other machines reach")
 	f.StringArrayVar(&o.origins, "origin", nil, "origin whose pages may call from a browser, such as https://map.example; repeat for several")
-	f.IntVar(&o.vehicles, "max-vehicles", 0, "greatest number of vehicles at once (0: the server's default)")
-	f.IntVar(&o.maxCells, "max-cells", 0, "greatest number of cells of a belief (0: the session's default)")
+	f.IntVar(&o.vehicles, "max-vehicles", defaultVehicles, "greatest number of vehicles at once")
+	f.IntVar(&o.maxCells, "max-cells", defaultCells, "greatest number of cells of a belief")
 	f.DurationVar(&o.drainTimeout, "drain-timeout", 10*time.Second, "how long to wait for streams when stopping")
+	f.Var(&o.logFormat, "log-format", "form of the log: text or json")
+	f.Var(&o.logLevel, "log-level", "least level of what is logged: debug, info, warn or error")
+	f.BoolVar(&o.printConfig, "print-config", false, "print the settings that count and where each came from, and end")
+	settable(c, "map", "suite", "listen", "plain-text-beyond-loopback", "origin", "max-vehicles", "max-cells", "drain-timeout", "log-format", "log-level")
 	return c
 }
 
 func serve(c *cobra.Command, o *serveOptions) error {
-	if !o.plainBeyondLoopback {
-		if err := loopback(o.listen); err != nil {
-			return err
-		}
+	if o.printConfig {
+		return printConfig(c.OutOrStdout(), c)
 	}
-	cfg, closeMaps, err := o.config()
-	defer closeMaps()
+	if len(o.maps) == 0 {
+		return errors.New("no map to serve: give --map NAME=FILE, LEADLINE_MAP, or map in the file of settings; see `leadline serve --help`")
+	}
+	log := logger(c.ErrOrStderr(), o.logFormat.word, o.logLevel.word)
+	if names := unknownVariables(c.Root()); len(names) > 0 {
+		log.Warn("variables that name no setting", "variables", names)
+	}
+	s, err := o.start(log)
 	if err != nil {
 		return err
 	}
-	cfg.Log = slog.New(slog.NewTextHandler(c.ErrOrStderr(), nil))
-	s, err := server.New(*cfg)
-	if err != nil {
-		return err
-	}
-	l, err := net.Listen("tcp", o.listen)
-	if err != nil {
-		return fmt.Errorf("--listen %s: %w: give another address or port", o.listen, errors.Unwrap(err))
-	}
-	stop, release := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
-	defer release()
-	fmt.Fprintf(c.OutOrStdout(), "listening on %s, maps: %s\n", l.Addr(), strings.Join(s.MapNames(), ", "))
-	done := make(chan error, 1)
-	go func() { done <- s.Serve(l) }()
-	select {
-	case err := <-done:
-		return err
-	case <-stop.Done():
-	}
-	release() // a second signal kills
-	cfg.Log.Info("stopping", "wait", o.drainTimeout)
-	ctx, cancel := context.WithTimeout(context.Background(), o.drainTimeout)
-	defer cancel()
-	if err := s.Shutdown(ctx); err != nil {
-		cfg.Log.Warn("streams were cut off", "after", o.drainTimeout)
-	}
-	return <-done
+	return s.untilSignalled(log, o.drainTimeout, func() {
+		fmt.Fprintf(c.OutOrStdout(), "listening on %s, maps: %s\n", s.address, strings.Join(s.maps, ", "))
+		b := thisBuild()
+		log.Info("serving", "address", s.address, "maps", s.maps, "version", b.Version, "commit", b.Commit, "go", b.Go, "platform", b.Platform)
+	})
 }
 
 // config opens maps and suites.
@@ -113,10 +106,7 @@ func (o *serveOptions) config() (cfg *server.Config, closeMaps func(), err error
 			return nil, closeMaps, err
 		}
 		opened = append(opened, m)
-		cfg.Maps = append(cfg.Maps, m.served(name))
-	}
-	if o.uploads != "" {
-		cfg.Uploads = uploadsTo(o.uploads)
+		cfg.Maps = append(cfg.Maps, server.Map{Name: name, Space: m.Space, Names: m.Names})
 	}
 	for _, name := range sensor.StarterNames() {
 		if cfg.Suites[name], err = openSuite(name); err != nil {

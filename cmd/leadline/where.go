@@ -39,6 +39,7 @@ func whereCommand() *cobra.Command {
 	f.Float64Var(&o.risk, "risk", 0, "integrity risk of the protection radius (default: the suite's)")
 	f.StringVar(&o.area, "area", "", "GeoJSON file with one polygon whose probability is wanted")
 	f.DurationVar(&o.timeout, "timeout", 10*time.Second, "how long to wait for an answer")
+	settable(c, "at=server")
 	return c
 }
 
