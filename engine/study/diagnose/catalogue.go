@@ -73,7 +73,7 @@ func catalogue(vs []voice) []Mistake {
 
 func (v voice) factor(name string, p part, f float64, measured bool, remedy string) Mistake {
 	m := Mistake{
-		Name: name, Sensor: v.sensor, family: name, of: v.is, Remedy: remedy,
+		Name: name, Sensor: v.sensor, Remedy: remedy, of: v.is,
 		mend: func(m sensor.Measurement) sensor.Measurement { return times(m, p, f) },
 	}
 	if measured {
@@ -106,7 +106,7 @@ func (v voice) signs() []Mistake {
 		}
 	case sensor.KindDisplacement:
 		swap := Mistake{
-			Name: "east and north swapped", Sensor: v.sensor, family: "axes", of: v.is, Remedy: "swap them in what writes the log",
+			Name: "east and north swapped", Sensor: v.sensor, Remedy: "swap them in what writes the log", of: v.is,
 			mend: func(m sensor.Measurement) sensor.Measurement {
 				d := m.(sensor.Displacement)
 				d.EastM, d.NorthM = d.NorthM, d.EastM
@@ -126,8 +126,8 @@ func (v voice) signs() []Mistake {
 		return []Mistake{flip("altitude sign reversed", altitude)}
 	case sensor.KindFix:
 		return []Mistake{{
-			Name: "longitude and latitude swapped", Sensor: v.sensor, family: "swapped", of: v.is,
-			Remedy: "swap them in what writes the log", mend: swapped,
+			Name: "longitude and latitude swapped", Sensor: v.sensor, Remedy: "swap them in what writes the log", of: v.is,
+			mend: swapped,
 			lnScale: func(m sensor.Measurement) float64 {
 				p := m.(sensor.Fix).Position
 				return kernel.Log(math.Max(math.Abs(kernel.Cos(p.Lat)), 1e-9) / math.Max(math.Abs(kernel.Cos(p.Lon)), 1e-9))
@@ -190,7 +190,7 @@ func (v voice) clocks() []Mistake {
 	}
 	shift := func(name string, s float64) Mistake {
 		return Mistake{
-			Name: name, Sensor: v.sensor, Value: s, Unit: "s", family: name, of: v.is, shift: sensor.Time(s * 1e9),
+			Name: name, Sensor: v.sensor, Value: s, Unit: "s", of: v.is, shift: sensor.Time(s * 1e9),
 			Remedy: fmt.Sprintf("add %g to the sensor's `time_offset_s` in the suite", s),
 		}
 	}
@@ -201,17 +201,17 @@ func (v voice) clocks() []Mistake {
 // high by.
 func (v voice) offset(byM, broadM, sigmaM float64) Mistake {
 	return Mistake{
-		Name: "vertical datum off", Sensor: v.sensor, Value: byM, Unit: "m", family: "datum " + v.sensor, of: v.is,
-		Remedy: "take the offset off the heights, or use a map with their datum", free: true,
+		Name: "vertical datum off", Sensor: v.sensor, Value: byM, Unit: "m", of: v.is,
+		Remedy: "take the offset off the heights, or use a map with their datum",
 		mend: func(m sensor.Measurement) sensor.Measurement {
 			return broaden(raise(m, -byM), broadM, sigmaM)
 		},
 	}
 }
 
-// north is a direction that counts from another north than the true one, by
-// byRad clockwise from it.
-func northOff(name, who, remedy string, of func(s, k string) bool, byRad float64) Mistake {
+// northOff is directions that count from another north than the true one, byRad
+// clockwise from it.
+func northOff(name, who, remedy string, of func(sensor, kind string) bool, byRad float64) Mistake {
 	return Mistake{
 		Name: name, Sensor: who, Value: geo.Deg(byRad), Unit: "deg", of: of, Remedy: remedy,
 		mend: func(m sensor.Measurement) sensor.Measurement { return turned(m, byRad) },

@@ -2,6 +2,7 @@ package diagnose
 
 import (
 	"errors"
+	"math"
 	"slices"
 	"time"
 
@@ -14,7 +15,9 @@ import (
 
 // Options say how a diagnosis is made. The zero value is useful.
 type Options struct {
-	// OpeningS is how much of the drive is tried again, seconds; 0: 300.
+	// OpeningS is how much of the drive is tried again: until a sensor has
+	// measured motion for so many seconds; 0: 300. A vehicle that stands tells
+	// little.
 	OpeningS float64
 	// MaxEvents cuts the opening short; 0: 20 000.
 	MaxEvents int
@@ -124,10 +127,7 @@ func newCourse(d *drivefile.Drive, c session.Config, o Options) (*course, error)
 		}
 	}
 	k.suite, _ = suiteOf(c)
-	n := min(len(events), o.MaxEvents)
-	for n > 1 && events[n-1].Time.Seconds(k.start) > o.OpeningS {
-		n--
-	}
+	n := opening(events[:min(len(events), o.MaxEvents)], o.OpeningS)
 	k.events = events[:n:n]
 	for i := range k.events {
 		if ev := &k.events[i]; ev.Sensor == "" {
@@ -143,4 +143,41 @@ func newCourse(d *drivefile.Drive, c session.Config, o Options) (*course, error)
 	}
 	k.rounds = slices.Compact(k.rounds)
 	return k, nil
+}
+
+// movingMPS is the speed from which a vehicle moves.
+const movingMPS = 0.2
+
+// opening is how many events a drive's opening has.
+func opening(events []sensor.Event, seconds float64) int {
+	moved := map[string]float64{} // seconds, by sensor
+	last := map[string]sensor.Time{}
+	most := 0.0
+	for i, ev := range events {
+		if most >= seconds {
+			return i
+		}
+		var d float64
+		since := last[ev.Sensor]
+		switch m := ev.Measurement.(type) {
+		case sensor.Travel:
+			d, since = m.DistanceM, m.Since
+		case sensor.Displacement:
+			d, since = math.Hypot(m.EastM, m.NorthM), m.Since
+		case sensor.BodyDisplacement:
+			d, since = m.ForwardM, m.Since
+		case sensor.Speed:
+			if since != 0 {
+				d = m.MPS * ev.Time.Seconds(since)
+			}
+			last[ev.Sensor] = ev.Time
+		default:
+			continue
+		}
+		if dt := ev.Time.Seconds(since); math.Abs(d) > movingMPS*dt {
+			moved[ev.Sensor] += dt
+			most = math.Max(most, moved[ev.Sensor])
+		}
+	}
+	return len(events)
 }

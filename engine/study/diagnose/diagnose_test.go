@@ -8,6 +8,7 @@ import (
 	"strings"
 	"testing"
 
+	"leadline/engine/sensor"
 	"leadline/fixtures/accept"
 )
 
@@ -152,7 +153,7 @@ func TestSameInAnyOrder(t *testing.T) {
 		}
 		reports = append(reports, r)
 	}
-	if len(reports[0].Candidates) < 20 {
+	if len(reports[0].Candidates) < 10 {
 		t.Fatalf("only %d candidates", len(reports[0].Candidates))
 	}
 	for _, r := range reports[1:] {
@@ -182,6 +183,37 @@ func TestNeeded(t *testing.T) {
 		odds := prior * math.Exp(needed(tried)) / 0.99
 		if math.Abs(odds-99) > 1e-6 {
 			t.Errorf("%d tried: the odds are %v, want 99", tried, odds)
+		}
+	}
+}
+
+// TestOpening: the opening ends when a sensor has measured so many seconds of
+// motion; standing does not count.
+func TestOpening(t *testing.T) {
+	travel := func(s, d float64) sensor.Event {
+		at := sensor.Time(s * 1e9)
+		return sensor.Event{Time: at, Sensor: "odo", Measurement: sensor.Travel{Since: at - 1e9, DistanceM: d}}
+	}
+	speed := func(s, v float64) sensor.Event {
+		return sensor.Event{Time: sensor.Time(s * 1e9), Sensor: "log", Measurement: sensor.Speed{MPS: v}}
+	}
+	for _, c := range []struct {
+		name    string
+		events  []sensor.Event
+		seconds float64
+		want    int
+	}{
+		{"moves", []sensor.Event{travel(1, 5), travel(2, 5), travel(3, 5)}, 2, 2},
+		{"goes backward", []sensor.Event{travel(1, -5), travel(2, -5), travel(3, 5)}, 2, 2},
+		{"stands first", []sensor.Event{travel(1, 0), travel(2, 0.1), travel(3, 5), travel(4, 5), travel(5, 5)}, 2, 4},
+		{"stands", []sensor.Event{travel(1, 0), travel(2, 0), travel(3, 0)}, 2, 3},
+		{"is short", []sensor.Event{travel(1, 5)}, 2, 1},
+		{"by speeds, the first of which covers nothing", []sensor.Event{speed(1, 3), speed(2, 3), speed(3, 3), speed(4, 3)}, 2, 3},
+		{"two sensors", []sensor.Event{speed(1, 3), travel(1, 5), speed(2, 3), travel(2, 5), speed(3, 3), travel(3, 5)}, 2, 4},
+		{"no motion at all", []sensor.Event{{Sensor: "fix", Measurement: sensor.Fix{}}, {Sensor: "fix", Measurement: sensor.Fix{}}}, 2, 2},
+	} {
+		if got := opening(c.events, c.seconds); got != c.want {
+			t.Errorf("%s: %d events, want %d", c.name, got, c.want)
 		}
 	}
 }

@@ -20,19 +20,18 @@ type Mistake struct {
 	// Remedy says what to do about it.
 	Remedy string
 
-	family string                 // mistakes that differ in Value alone
-	of     func(s, k string) bool // by name and kind of a sensor
-	shift  sensor.Time            // taken off the times
-	// mend returns the measurement as it should be, nil to leave it alone. What
-	// it returns must not share slices with m.
+	of    func(sensor, kind string) bool // whose measurements
+	shift sensor.Time                    // taken off the times
+	// mend returns the measurement as it should be; nil leaves it alone. It
+	// changes no slice of m.
 	mend func(m sensor.Measurement) sensor.Measurement
 	// lnScale is ln |∂mended/∂recorded| of a measurement that is weighed.
 	lnScale func(mended sensor.Measurement) float64
-	// free says that Value was searched for; below least it is no mistake but an
-	// error that sensors have. Among so many values it is told apart.
-	free   bool
-	least  float64
-	values float64
+
+	// family is what differs in Value alone; search how that was found, nil if
+	// it was not searched for.
+	family string
+	search *scan
 }
 
 // String names the mistake with its sensor and value.
@@ -101,7 +100,6 @@ const (
 	altitude  // of clearance and barometer
 	clearance // of clearance
 	depth     // all depths of a sounding
-	speed
 )
 
 // times multiplies parts of a measurement; stated sigmas stay as they are.
@@ -128,7 +126,7 @@ func times(m sensor.Measurement, p part, f float64) sensor.Measurement {
 		by(&m.TurnRad, turn)
 		return m
 	case sensor.Speed:
-		by(&m.MPS, distance|speed)
+		by(&m.MPS, distance)
 		return m
 	case sensor.Clearance:
 		by(&m.ClearanceM, clearance)

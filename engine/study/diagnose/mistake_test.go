@@ -18,7 +18,6 @@ func TestUndoes(t *testing.T) {
 	before := func(s float64) sensor.Time { return at - sensor.Time(s*1e9) }
 	north := geo.Rad(10)
 	for _, c := range []struct {
-		kind       string
 		name       string
 		good, bad  sensor.Measurement
 		badTime    sensor.Time
@@ -165,7 +164,7 @@ func TestSearchesReachEverywhere(t *testing.T) {
 		values := []float64{0}
 		for _, m := range s.coarse() {
 			values = append(values, m.Value)
-			if !m.free || m.family != s.family {
+			if m.search != s || m.family != s.family {
 				t.Errorf("%s: a coarse value is not of its family", s.family)
 			}
 		}

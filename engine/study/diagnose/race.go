@@ -112,7 +112,7 @@ func keep(es []*entrant) []*entrant {
 		if better(e, best) {
 			best = e
 		}
-		if f := e.mistake.family; e.mistake.free && better(e, of[f]) {
+		if f := e.mistake.family; e.mistake.search != nil && better(e, of[f]) {
 			of[f] = e
 		}
 	}

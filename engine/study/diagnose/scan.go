@@ -42,7 +42,7 @@ func (s *scan) coarse() []Mistake {
 
 func (s *scan) named(value, half float64) Mistake {
 	m := s.make(value, half)
-	m.family, m.free, m.Value, m.least, m.values = s.family, true, value, s.least, float64(s.values())
+	m.family, m.search, m.Value = s.family, s, value
 	return m
 }
 
@@ -131,7 +131,7 @@ func (s *scan) grids(given []Grid, at geo.LonLat) []Mistake {
 		}
 		taken = append(taken, deg)
 		m := s.named(deg, 0)
-		m.free, m.Name = false, "directions from grid north ("+g.Name+")"
+		m.search, m.Name = nil, "directions from grid north ("+g.Name+")"
 		m.Remedy = "add the grid's convergence to the directions, or let them count from true north"
 		out = append(out, m)
 	}

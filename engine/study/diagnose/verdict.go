@@ -51,7 +51,7 @@ func (c *course) tryAll(r *Report, o Options) error {
 	for _, e := range es[1:] {
 		switch {
 		case len(e.nats) == 0:
-		case !e.mistake.free:
+		case e.mistake.search == nil:
 			tried = append(tried, e)
 		default:
 			if o := found[e.mistake.family]; o == nil || len(e.nats) > len(o.nats) || len(e.nats) == len(o.nats) && e.last() > o.last() {
@@ -96,7 +96,7 @@ func (c *course) tryAll(r *Report, o Options) error {
 		k := Candidate{
 			Mistake: m.Name, Sensor: m.Sensor, Value: m.Value, Unit: m.Unit, Remedy: m.Remedy,
 			GainNats: e.gain(base, best), GivenUpAfter: c.givenUp(e), mistake: m,
-			Named: c.finished(e) && math.Abs(m.Value) >= m.least,
+			Named: c.finished(e) && (m.search == nil || math.Abs(m.Value) >= m.search.least),
 		}
 		for _, f := range e.run.log.fits(c.start) {
 			if f.Bad {
@@ -184,12 +184,12 @@ func (r *Report) atLeast() string {
 // north: one that explains the log as well, but for what the search may gain by
 // chance among the values it tells apart.
 func (r *Report) isKnown(k *Candidate) bool {
-	if !k.mistake.free {
+	if k.mistake.search == nil {
 		return false
 	}
 	return slices.ContainsFunc(r.Candidates, func(o Candidate) bool {
-		return o.GivenUpAfter == nil && !o.mistake.free && o.mistake.family == k.mistake.family &&
-			o.GainNats >= k.GainNats-kernel.Log(k.mistake.values)
+		return o.GivenUpAfter == nil && o.mistake.search == nil && o.mistake.family == k.mistake.family &&
+			o.GainNats >= k.GainNats-kernel.Log(float64(k.mistake.search.values()))
 	})
 }
 
