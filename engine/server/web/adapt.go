@@ -51,6 +51,9 @@ type call struct {
 	ctx    context.Context
 	info   *connect.CallInfo
 	stream connect.ServerStream
+
+	received bool // the request
+	early    bool // the headers go once it is
 }
 
 var (
@@ -86,16 +89,32 @@ func (c *call) SetHeader(md metadata.MD) error {
 	return nil
 }
 
-// SendHeader sends the headers of a stream at once; a unary call has them sent
-// with its answer.
+// SendHeader sends the headers of a stream at once, but not before the request
+// has been read: net/http closes a request's body when the answer begins. A
+// unary call has them sent with its answer.
 func (c *call) SendHeader(md metadata.MD) error {
 	add(c.info.ResponseHeader(), md)
-	return c.stream.SendHeaders()
+	if !c.received {
+		c.early = true
+		return nil
+	}
+	return inward(c.stream.SendHeaders())
+}
+
+func (c *call) RecvMsg(m any) error {
+	if err := inward(c.stream.Receive(m)); err != nil {
+		return err
+	}
+	c.received = true
+	if c.early {
+		c.early = false
+		return inward(c.stream.SendHeaders())
+	}
+	return nil
 }
 
 func (c *call) SetTrailer(md metadata.MD) { add(c.info.ResponseTrailer(), md) }
 func (c *call) SendMsg(m any) error       { return inward(c.stream.Send(m)) }
-func (c *call) RecvMsg(m any) error       { return inward(c.stream.Receive(m)) }
 
 func add(h *connect.Header, md metadata.MD) {
 	for key, values := range md {

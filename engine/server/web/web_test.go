@@ -19,6 +19,7 @@ import (
 	"connectrpc.com/connect/v2/connecthttp"
 	"google.golang.org/grpc"
 	"google.golang.org/grpc/codes"
+	"google.golang.org/grpc/metadata"
 	"google.golang.org/grpc/status"
 
 	leadlinev1 "leadline/proto/leadline/v1"
@@ -187,6 +188,34 @@ func TestInterceptors(t *testing.T) {
 	if got := strings.Join(seen, " "); got != "/leadline.v1.PositionService/Where /leadline.v1.PositionService/Where /leadline.v1.PositionService/Follow" {
 		t.Errorf("seen: %s", got)
 	}
+}
+
+// TestHeadersFirst proves that headers which an interceptor sends before the
+// request is read do not cost the request, and that they come before there is
+// anything to say.
+func TestHeadersFirst(t *testing.T) {
+	b := serveBoth(t, Config{Stream: func(srv any, ss grpc.ServerStream, _ *grpc.StreamServerInfo, handler grpc.StreamHandler) error {
+		if err := ss.SendHeader(metadata.Pairs("version", "7")); err != nil {
+			return err
+		}
+		return handler(srv, ss)
+	}})
+	request := filepath.Join(t.TempDir(), "request")
+	if err := os.WriteFile(request, []byte("\x00\x00\x00\x00\x12"+`{"vehicles":["v"]}`), 0o600); err != nil {
+		t.Fatal(err)
+	}
+	code, body := curl(t, "-i", "-H", "Content-Type: application/connect+json", "--data-binary", "@"+request, b.url("Follow"))
+	if code != "200" || strings.Count(body, `"vehicle":"v"`) != 3 || !strings.Contains(body, "Version: 7") || strings.Contains(body, "error") {
+		t.Errorf("%s %q", code, body)
+	}
+	silent := dial(t, b.address, "POST /leadline.v1.PositionService/Follow HTTP/1.1\r\nHost: localhost\r\nContent-Type: application/connect+json\r\nContent-Length: 7\r\n\r\n\x00\x00\x00\x00\x02{}")
+	<-b.entered
+	_ = silent.SetReadDeadline(time.Now().Add(30 * time.Second))
+	if r, err := http.ReadResponse(bufio.NewReader(silent), nil); err != nil || r.Header.Get("Version") != "7" {
+		t.Errorf("a stream with nothing to say answers %v, %v", r, err)
+	}
+	silent.Close()
+	<-b.over
 }
 
 // TestFollowerGoes proves that a stream ends when its reader closes the
