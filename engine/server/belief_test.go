@@ -101,7 +101,8 @@ func TestBeliefOnAPlane(t *testing.T) {
 	for what, suite := range map[string]*sensor.Suite{
 		"lattice": nil,
 		"Gaussians": {Sensors: []sensor.Sensor{
-			{Name: "log", Kind: sensor.KindDisplacement}, {Name: "gnss", Kind: sensor.KindFix},
+			{Name: "log", Kind: sensor.KindDisplacement},
+			{Name: "gnss", Kind: sensor.KindFix},
 			{Name: "compass", Kind: sensor.KindHeading, Nuisances: []sensor.Nuisance{{Name: sensor.NuisanceHeading, Sigma: 10}}},
 		}},
 	} {

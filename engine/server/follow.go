@@ -86,7 +86,7 @@ func (h *hub) newFollower(req *leadlinev1.FollowRequest) (*follower, error) {
 		if v == "" {
 			return nil, badField("vehicles", "follow: a vehicle has no name: give the name it is fed under, or name none to follow all")
 		}
-		if err := wire.Name("vehicle", v); err != nil {
+		if err := wire.Name("vehicles", v); err != nil {
 			return nil, badField("vehicles", "follow: %v", err)
 		}
 		if f.vehicles == nil {
@@ -117,7 +117,7 @@ func (h *hub) newFollower(req *leadlinev1.FollowRequest) (*follower, error) {
 		}
 		for _, v := range fs {
 			if !(v > 0 && v < 1) {
-				return nil, badField("region_fractions", "follow: region fraction %v: it must be above 0 and below 1", v)
+				return nil, badField("region_fractions", "follow: region_fractions: %v: it must be above 0 and below 1", v)
 			}
 		}
 		f.asking.fractions = slices.Clone(fs)

@@ -266,6 +266,7 @@ func newAsking(c session.Config) (Session, error) {
 func (s asking) Region(f float64) (*summary.Region, error) {
 	return &summary.Region{Level: f, AreaM2: float64(s.count)}, nil
 }
+
 func (s asking) Inside([][]geo.LonLat) (float64, error)         { return float64(s.count%10) / 10, nil }
 func (s asking) Protection(float64) (summary.Protection, error) { return summary.Protection{}, nil }
 
@@ -278,8 +279,13 @@ func TestManyFollowed(t *testing.T) {
 	ctx := limited(t)
 	var followers sync.WaitGroup
 	for i, req := range []*leadlinev1.FollowRequest{
-		{}, {}, {MinIntervalS: 0.01}, {StatusChangesOnly: true}, {Detail: leadlinev1.Detail_DETAIL_REGION},
-		{Area: square, AreaProbability: proto.Float64(0.15)}, {Vehicles: []string{"v7", "v70", "v700"}, Detail: leadlinev1.Detail_DETAIL_REGION, MinIntervalS: 0.05},
+		{},
+		{},
+		{MinIntervalS: 0.01},
+		{StatusChangesOnly: true},
+		{Detail: leadlinev1.Detail_DETAIL_REGION},
+		{Area: square, AreaProbability: proto.Float64(0.15)},
+		{Vehicles: []string{"v7", "v70", "v700"}, Detail: leadlinev1.Detail_DETAIL_REGION, MinIntervalS: 0.05},
 	} {
 		st, cancel := following(t, conn, req)
 		followers.Go(func() {
@@ -453,7 +459,7 @@ func TestBadFollow(t *testing.T) {
 		{"no detail", &leadlinev1.FollowRequest{Detail: 99}, "detail 99"},
 		{"fractions without regions", &leadlinev1.FollowRequest{RegionFractions: []float64{0.5}}, "without DETAIL_REGION"},
 		{"too many fractions", &leadlinev1.FollowRequest{Detail: leadlinev1.Detail_DETAIL_REGION, RegionFractions: []float64{0.5, 0.6}}, "2 region_fractions"},
-		{"no fraction", &leadlinev1.FollowRequest{Detail: leadlinev1.Detail_DETAIL_REGION, RegionFractions: []float64{1}}, "region fraction 1"},
+		{"no fraction", &leadlinev1.FollowRequest{Detail: leadlinev1.Detail_DETAIL_REGION, RegionFractions: []float64{1}}, "region_fractions: 1"},
 		{"no area", &leadlinev1.FollowRequest{Area: &leadlinev1.Polygon{}}, "area: no ring"},
 		{"many corners", &leadlinev1.FollowRequest{Area: round(1001)}, "more than 1000 points"},
 		{"a wide area", &leadlinev1.FollowRequest{Area: wide}, "2000 km across"},

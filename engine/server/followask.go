@@ -84,7 +84,7 @@ func (x *extras) extra(p *summary.Posterior, w want) (*extra, error) {
 		if m == nil {
 			r, err := asker.Region(fraction)
 			if err != nil {
-				return nil, badField("region_fractions", "follow: region fraction %v: %v", fraction, err)
+				return nil, badField("region_fractions", "follow: region_fractions: %v: %v", fraction, err)
 			}
 			m = region(r)
 			x.regions[fraction] = m

@@ -203,7 +203,9 @@ func (r *reader) again() {
 
 // ways are the ways to follow; those in front are told everything.
 var ways = []*leadlinev1.FollowRequest{
-	{}, {Vehicles: []string{"a"}}, {Vehicles: []string{"b", "c"}},
+	{},
+	{Vehicles: []string{"a"}},
+	{Vehicles: []string{"b", "c"}},
 	{MinIntervalS: 2},
 	{StatusChangesOnly: true},
 	{Detail: leadlinev1.Detail_DETAIL_REGION},

@@ -90,7 +90,8 @@ type wrongCall struct {
 	do     func(t *testing.T, s *Server, conn *grpc.ClientConn) said
 }
 
-func wrongCalls() []wrongCall {
+func wrongCalls(t *testing.T) []wrongCall {
+	uploading := func(t *testing.T) Config { return Config{Uploads: (&shelf{}).uploads(t.TempDir())} }
 	open := func(change func(o *leadlinev1.Open)) func(*testing.T, *Server, *grpc.ClientConn) said {
 		return func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
 			o := &leadlinev1.Open{Header: header("v"), Drive: "d"}
@@ -246,6 +247,26 @@ func wrongCalls() []wrongCall {
 		{leadlinev1.Reason_REASON_NOT_OFFERED, "method", Config{}, func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
 			return saidBy(conn.Invoke(limited(t), "/leadline.v1.PositionService/Teleport", &emptypb.Empty{}, &emptypb.Empty{}))
 		}},
+		{leadlinev1.Reason_REASON_NOT_OFFERED, "", Config{}, func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
+			_, err := put(limited(t), conn, beginning("lake", "plane a"), "plane a")
+			return saidBy(err)
+		}},
+		{leadlinev1.Reason_REASON_BAD_TOKEN, "field", Config{}, func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
+			st, err := leadlinev1.NewPositionServiceClient(conn).Follow(limited(t), &leadlinev1.FollowRequest{ResumeToken: "next, please"})
+			if err != nil {
+				t.Fatal(err)
+			}
+			_, err = st.Recv()
+			return saidBy(err)
+		}},
+		{leadlinev1.Reason_REASON_BAD_MAP, "map", uploading(t), func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
+			_, err := put(limited(t), conn, beginning("lake", "rubbish"), "rubbish")
+			return saidBy(err)
+		}},
+		{leadlinev1.Reason_REASON_MAP_EXISTS, "map", uploading(t), func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
+			_, err := put(limited(t), conn, beginning("sea", "plane a"), "plane a")
+			return saidBy(err)
+		}},
 		{leadlinev1.Reason_REASON_NOT_OFFERED, "-", Config{NewSession: newTally}, ask(&leadlinev1.WhereRequest{Vehicles: []string{"v"}, RegionFractions: []float64{0.5}})},
 	}
 }
@@ -254,11 +275,8 @@ func wrongCalls() []wrongCall {
 // it: with the code that reason.proto names, what it is about, and one line
 // that says what was wrong.
 func TestReasons(t *testing.T) {
-	seen := map[leadlinev1.Reason]bool{
-		// Of calls that are not here yet.
-		leadlinev1.Reason_REASON_BAD_TOKEN: true, leadlinev1.Reason_REASON_BAD_MAP: true, leadlinev1.Reason_REASON_MAP_EXISTS: true,
-	}
-	for i, c := range wrongCalls() {
+	seen := map[leadlinev1.Reason]bool{}
+	for i, c := range wrongCalls(t) {
 		name := strings.ToLower(strings.TrimPrefix(c.reason.String(), "REASON_"))
 		t.Run(fmt.Sprint(name, " ", i), func(t *testing.T) {
 			s, conn := serve(t, c.config)

@@ -268,7 +268,8 @@ func TestBadUpload(t *testing.T) {
 	for _, name := range []string{"", ".", "..", "../outside", "/etc/passwd", "a/b", `a\b`, "a\x00b", ".hidden", "-o", "bay.heights.x", "ü", strings.Repeat("x", 101), "con:", "a b", "a\n"} {
 		rows = append(rows, row{
 			fmt.Sprintf("the name %q", name),
-			[]*leadlinev1.UploadMapRequest{with(func(b *leadlinev1.MapBeginning) { b.Name = name }), chunk(good)}, codes.InvalidArgument, "give up to 100 letters",
+			[]*leadlinev1.UploadMapRequest{with(func(b *leadlinev1.MapBeginning) { b.Name = name }), chunk(good)},
+			codes.InvalidArgument, "give up to 100 letters",
 		})
 	}
 	for _, r := range rows {

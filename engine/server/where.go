@@ -56,21 +56,21 @@ func (s *Server) Where(ctx context.Context, req *leadlinev1.WhereRequest) (*lead
 // question checks a request.
 func (s *Server) question(req *leadlinev1.WhereRequest) (*question, error) {
 	tooMany := func(field string, n, most int) error {
-		return refuse(leadlinev1.Reason_REASON_BAD_FIELD, about{"field": "where." + field, "limit": field, "most": strconv.Itoa(most)},
+		return refuse(leadlinev1.Reason_REASON_BAD_FIELD, about{"field": field, "limit": field, "most": strconv.Itoa(most)},
 			"where: %d %s: at most %d; ask in several calls", n, field, most)
 	}
 	switch n, most := len(req.GetVehicles()), s.cfg.Limits.Questions; {
 	case n == 0:
-		return nil, badField("where.vehicles", "where: vehicles is empty: give the names that they are fed under")
+		return nil, badField("vehicles", "where: vehicles is empty: give the names that they are fed under")
 	case n > most:
 		return nil, tooMany("vehicles", n, most)
 	}
 	for i, v := range req.GetVehicles() {
 		if v == "" {
-			return nil, badField("where.vehicles", "where: vehicles[%d] is empty: give the name that it is fed under", i)
+			return nil, badField("vehicles", "where: vehicles[%d] is empty: give the name that it is fed under", i)
 		}
 		if err := wire.Name(fmt.Sprintf("vehicles[%d]", i), v); err != nil {
-			return nil, badField("where.vehicles", "where: %v", err)
+			return nil, badField("vehicles", "where: %v", err)
 		}
 	}
 	q := &question{fractions: req.GetRegionFractions(), toNow: req.GetPredictToNow()}
@@ -79,18 +79,18 @@ func (s *Server) question(req *leadlinev1.WhereRequest) (*question, error) {
 	}
 	for _, f := range q.fractions {
 		if !(f > 0 && f < 1) {
-			return nil, badField("where.region_fractions", "where: region_fractions: %v: it must be above 0 and below 1", f)
+			return nil, badField("region_fractions", "where: region_fractions: %v: it must be above 0 and below 1", f)
 		}
 	}
 	if req.GetArea() != nil {
 		var err error
 		if q.area, err = wire.Polygon(req.GetArea()); err != nil {
-			return nil, badField("where.area", "where: area: %v", err)
+			return nil, badField("area", "where: area: %v", err)
 		}
 	}
 	if req.IntegrityRisk != nil {
 		if q.risk = req.GetIntegrityRisk(); !(q.risk > 0 && q.risk < 1) {
-			return nil, badField("where.integrity_risk", "where: integrity_risk %v: it must be above 0 and below 1", q.risk)
+			return nil, badField("integrity_risk", "where: integrity_risk %v: it must be above 0 and below 1", q.risk)
 		}
 	}
 	return q, nil
@@ -193,21 +193,21 @@ func more(m *leadlinev1.Posterior, of any, q *question) error {
 	for _, f := range q.fractions {
 		r, err := a.Region(f)
 		if err != nil {
-			return badField("where.region_fractions", "where: region_fractions: %v: %v", f, err)
+			return badField("region_fractions", "where: region_fractions: %v: %v", f, err)
 		}
 		m.Regions = append(m.Regions, region(r))
 	}
 	if q.area != nil {
 		in, err := a.Inside(q.area)
 		if err != nil {
-			return badField("where.area", "where: area: %v", err)
+			return badField("area", "where: area: %v", err)
 		}
 		m.AreaProbability = proto.Float64(in)
 	}
 	if q.risk != 0 {
 		p, err := a.Protection(q.risk)
 		if err != nil {
-			return badField("where.integrity_risk", "where: integrity_risk: %v", err)
+			return badField("integrity_risk", "where: integrity_risk: %v", err)
 		}
 		m.Protection = protection(p)
 	}
@@ -215,5 +215,5 @@ func more(m *leadlinev1.Posterior, of any, q *question) error {
 }
 
 func notAsked(fields string) error {
-	return refuse(leadlinev1.Reason_REASON_NOT_OFFERED, about{"field": "where." + fields}, "where: this server answers with the posterior alone: leave out %s", fields)
+	return refuse(leadlinev1.Reason_REASON_NOT_OFFERED, about{"field": fields}, "where: this server answers with the posterior alone: leave out %s", fields)
 }
