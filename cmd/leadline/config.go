@@ -35,8 +35,12 @@ func settable(c *cobra.Command, flags ...string) {
 		c.Annotations = map[string]string{}
 	}
 	c.Annotations[optionsOf] = strings.Join(flags, " ")
-	c.Flags().String("config", "", "YAML file of settings; see the README")
-	c.PreRunE = func(c *cobra.Command, _ []string) error { return configure(c) }
+}
+
+// takeSettings makes all commands under a root take their settings.
+func takeSettings(root *cobra.Command) {
+	root.PersistentFlags().String("config", "", "YAML file of settings; see the README")
+	root.PersistentPreRunE = func(c *cobra.Command, _ []string) error { return configure(c) }
 }
 
 func commandOptions(c *cobra.Command) (out []option) {
@@ -63,12 +67,12 @@ func eachOption(root *cobra.Command, f func(*cobra.Command, option)) {
 // configure gives settings that are not on the command line their values from
 // the environment and the file, and notes where each came from.
 func configure(c *cobra.Command) error {
-	flags := c.Flags()
-	path, err := flags.GetString("config")
+	flags, options := c.Flags(), commandOptions(c)
+	path, err := c.Root().PersistentFlags().GetString("config")
 	if err != nil {
 		return err
 	}
-	if path == "" {
+	if path == "" && len(options) > 0 {
 		path = os.Getenv(configVariable)
 	}
 	var file map[string]configValue
@@ -77,7 +81,7 @@ func configure(c *cobra.Command) error {
 			return err
 		}
 	}
-	for _, s := range commandOptions(c) {
+	for _, s := range options {
 		from := "default"
 		text := os.Getenv(s.variable())
 		v, inFile := file[s.key]

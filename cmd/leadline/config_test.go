@@ -6,6 +6,8 @@ import (
 	"slices"
 	"strings"
 	"testing"
+
+	"github.com/spf13/cobra"
 )
 
 // withEnv runs a command to its end with variables beside those of the test.
@@ -149,6 +151,22 @@ func FuzzParseConfig(f *testing.F) {
 	})
 }
 
+// TestServersAddress: every command that asks a server takes its address from
+// the settings.
+func TestServersAddress(t *testing.T) {
+	commands(newRoot(), func(c *cobra.Command) {
+		for _, name := range []string{"at", "to"} {
+			f := c.Flags().Lookup(name)
+			if f == nil || f.DefValue != defaultAddress {
+				continue
+			}
+			if !slices.Contains(commandOptions(c), option{"server", name}) {
+				t.Errorf("`%s --%s` is no setting: call settable(c, %q)", c.CommandPath(), name, name+"=server")
+			}
+		}
+	})
+}
+
 // TestEveryFlagOfServe: whatever serve can be told on the command line it can
 // be told by the environment and a file.
 func TestEveryFlagOfServe(t *testing.T) {
@@ -161,7 +179,7 @@ func TestEveryFlagOfServe(t *testing.T) {
 		options = append(options, o.flag)
 	}
 	for _, name := range flagNames(c) {
-		if !slices.Contains([]string{"help", "config", "print-config"}, name) && !slices.Contains(options, name) {
+		if !slices.Contains([]string{"help", "print-config"}, name) && !slices.Contains(options, name) {
 			t.Errorf("--%s is no setting: add it to settable", name)
 		}
 	}

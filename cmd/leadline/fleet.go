@@ -58,6 +58,7 @@ func vehiclesCommand() *cobra.Command {
 		},
 	}
 	c.Flags().StringVar(&at, "at", defaultAddress, "address of the server")
+	settable(c, "at=server")
 	c.Flags().StringVar(&onMap, "map", "", "only those on this map")
 	c.Flags().BoolVar(&asJSON, "json", false, "print each vehicle as JSON, one object a line")
 	return c
@@ -142,6 +143,7 @@ vehicle can still be asked for.`,
 		},
 	}
 	c.Flags().StringVar(&at, "at", defaultAddress, "address of the server")
+	settable(c, "at=server")
 	c.Flags().StringVar(&drive, "drive", "", "the drive's name; another one is left alone")
 	c.Flags().BoolVar(&asJSON, "json", false, "print the server's last word as JSON")
 	return c

@@ -50,6 +50,7 @@ how many. A connection that breaks is taken up again where it was.`,
 	}
 	f := c.Flags()
 	f.StringVar(&o.at, "at", defaultAddress, "address of the server")
+	settable(c, "at=server")
 	f.BoolVar(&o.asJSON, "json", false, "print each update as JSON, one object a line")
 	f.DurationVar(&o.interval, "interval", 0, "at least this long between two lines of a vehicle; a change of status comes at once")
 	f.BoolVar(&o.changes, "changes", false, "only changes of status")

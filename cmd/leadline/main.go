@@ -66,6 +66,7 @@ Exit status: 0 done, 1 the answer is a failure, 2 wrong use or bad input.`,
 		return fmt.Errorf("%w; see `%s --help`", err, c.CommandPath())
 	})
 	root.AddCommand(mapCommand(), importCommand(), replayCommand(), serveCommand(), feedCommand(), whereCommand(), followCommand(), vehiclesCommand(), endCommand(), demoCommand(), suiteCommand(), versionCommand())
+	takeSettings(root)
 	for _, c := range append(root.Commands(), root) {
 		helpForWrongArgs(c)
 	}

@@ -52,6 +52,7 @@ func mapListCommand() *cobra.Command {
 		},
 	}
 	c.Flags().StringVar(&at, "at", defaultAddress, "address of the server")
+	settable(c, "at=server")
 	c.Flags().BoolVar(&asJSON, "json", false, "print the answer as JSON")
 	return c
 }
@@ -104,6 +105,7 @@ drives can use it at once; those that are open keep the one they have.`,
 		RunE: func(c *cobra.Command, args []string) error { return sendMap(c, at, args[0], name, replace) },
 	}
 	c.Flags().StringVar(&at, "at", defaultAddress, "address of the server")
+	settable(c, "at=server")
 	c.Flags().StringVar(&name, "name", "", "name of the map at the server (default: the file's)")
 	c.Flags().BoolVar(&replace, "replace", false, "take the place of the map that has the name")
 	return c

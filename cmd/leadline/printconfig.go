@@ -58,7 +58,7 @@ func optionsTable(root *cobra.Command) string {
 		r := rows[s.key]
 		if r == nil {
 			r = &row{}
-			if r.def, r.meaning = f.DefValue, f.Usage; r.def == "[]" {
+			if r.def, r.meaning = f.DefValue, f.Usage; r.def == "[]" || r.def == "" {
 				r.def = "none"
 			}
 			rows[s.key] = r
@@ -66,7 +66,7 @@ func optionsTable(root *cobra.Command) string {
 		} else {
 			r.flags += ", "
 		}
-		r.flags += fmt.Sprintf("`%s --%s`", c.Name(), s.flag)
+		r.flags += fmt.Sprintf("`%s --%s`", strings.TrimPrefix(c.CommandPath(), root.Name()+" "), s.flag)
 	})
 	slices.Sort(keys)
 	b := &strings.Builder{}

@@ -98,7 +98,7 @@ func TestReadmeCommands(t *testing.T) {
 			sections[strings.Join(plain, " ")] = heading + "\n" + body
 		}
 	}
-	anyFlag := map[string]bool{"help": true, "version": true}
+	anyFlag := map[string]bool{"help": true, "version": true, "config": true}
 	commands(newRoot(), func(c *cobra.Command) {
 		for _, f := range flagNames(c) {
 			anyFlag[f] = true

@@ -182,6 +182,9 @@ func (r *rehearsal) serveArgs() []string {
 func (r *rehearsal) serve() (err error) {
 	var o serveOptions
 	c := o.command()
+	root := &cobra.Command{}
+	root.AddCommand(c)
+	takeSettings(root)
 	if err := c.ParseFlags(append(r.serveArgs()[1:], "--listen", "127.0.0.1:0")); err != nil {
 		return err
 	}

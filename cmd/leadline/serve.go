@@ -26,6 +26,7 @@ const (
 type serveOptions struct {
 	maps, suites        []string
 	origins             []string
+	uploads             string
 	listen              string
 	plainBeyondLoopback bool
 	maxCells, vehicles  int
@@ -55,6 +56,7 @@ Nothing is durable yet: a server that stops forgets its vehicles.`,
 	f := c.Flags()
 	f.StringArrayVar(&o.maps, "map", nil, "compiled map as NAME=FILE, or FILE alone for its own name; repeat for several")
 	f.StringArrayVar(&o.suites, "suite", nil, "suite as NAME=FILE, or FILE alone; repeat for several; the starter suites are always there")
+	f.StringVar(&o.uploads, "uploads", "", "folder that keeps maps which clients send; none are taken without it")
 	f.StringVar(&o.listen, "listen", defaultAddress, "address to listen on; port 0 takes a free one")
 	f.BoolVar(&o.plainBeyondLoopback, "plain-text-beyond-loopback", false, "listen without encryption or login on an address that other machines reach")
 	f.StringArrayVar(&o.origins, "origin", nil, "origin whose pages may call from a browser, such as https://map.example; repeat for several")
@@ -64,7 +66,7 @@ Nothing is durable yet: a server that stops forgets its vehicles.`,
 	f.Var(&o.logFormat, "log-format", "form of the log: text or json")
 	f.Var(&o.logLevel, "log-level", "least level of what is logged: debug, info, warn or error")
 	f.BoolVar(&o.printConfig, "print-config", false, "print the settings that count and where each came from, and end")
-	settable(c, "map", "suite", "listen", "plain-text-beyond-loopback", "origin", "max-vehicles", "max-cells", "drain-timeout", "log-format", "log-level")
+	settable(c, "map", "suite", "uploads", "listen", "plain-text-beyond-loopback", "origin", "max-vehicles", "max-cells", "drain-timeout", "log-format", "log-level")
 	return c
 }
 
@@ -72,7 +74,7 @@ func serve(c *cobra.Command, o *serveOptions) error {
 	if o.printConfig {
 		return printConfig(c.OutOrStdout(), c)
 	}
-	if len(o.maps) == 0 {
+	if len(o.maps) == 0 && o.uploads == "" {
 		return errors.New("no map to serve: give --map NAME=FILE, LEADLINE_MAP, or map in the file of settings; see `leadline serve --help`")
 	}
 	log := logger(c.ErrOrStderr(), o.logFormat.word, o.logLevel.word)
@@ -106,7 +108,10 @@ func (o *serveOptions) config() (cfg *server.Config, closeMaps func(), err error
 			return nil, closeMaps, err
 		}
 		opened = append(opened, m)
-		cfg.Maps = append(cfg.Maps, server.Map{Name: name, Space: m.Space, Names: m.Names})
+		cfg.Maps = append(cfg.Maps, m.served(name))
+	}
+	if o.uploads != "" {
+		cfg.Uploads = uploadsTo(o.uploads)
 	}
 	for _, name := range sensor.StarterNames() {
 		if cfg.Suites[name], err = openSuite(name); err != nil {
