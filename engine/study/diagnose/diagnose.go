@@ -119,6 +119,11 @@ func newCourse(d *drivefile.Drive, c session.Config, o Options) (*course, error)
 	}
 	c.MaxCells = o.MaxCells
 	k := &course{config: c, each: o.Each, start: events[0].Time, tick: func() {}}
+	for _, ev := range events {
+		if since, ok := sensor.Since(ev.Measurement); ok {
+			k.start = min(k.start, since)
+		}
+	}
 	if k.each == nil {
 		k.each = func(n int, f func(int)) {
 			for i := range n {
