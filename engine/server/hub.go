@@ -209,13 +209,3 @@ func (h *hub) known(f *follower) []*subject {
 	}
 	return out
 }
-
-// last says what is known of a drive without asking its owner.
-func (h *hub) last(sub *subject) (p *summary.Posterior, ended bool) {
-	h.mu.Lock()
-	defer h.mu.Unlock()
-	if sub.latest != nil {
-		p = sub.latest.p
-	}
-	return p, sub.end != nil
-}
