@@ -128,9 +128,13 @@ type live struct {
 	Ended bool
 }
 
-// accepted is the number of measurements that the server took.
+// accepted is the number of measurements that the server took; 0 before its
+// first posterior.
 func (l *live) accepted(t *testing.T) int {
 	t.Helper()
+	if l.Posterior.Counts.Accepted == "" {
+		return 0
+	}
 	n, err := strconv.Atoi(l.Posterior.Counts.Accepted)
 	if err != nil {
 		t.Fatal(err)

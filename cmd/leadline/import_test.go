@@ -64,7 +64,7 @@ func replayed(t *testing.T, drivePath, mapPath string, more ...string) (rows []r
 func agree(t *testing.T, a, b []row, shareOfSigma float64) {
 	t.Helper()
 	const rounding = 1.6e-3 // m: a step of 1.11 mm, half of it in each of two tables and both axes
-	if len(a) != len(b) || len(a) < 50 {
+	if len(a) != len(b) || len(a) < 30 {
 		t.Fatalf("%d and %d posteriors", len(a), len(b))
 	}
 	worst := 0.0
@@ -265,9 +265,9 @@ func surveyed(t *testing.T, dir string, seconds float64) (d *drivefile.Drive, dr
 	mapPath = filepath.Join(dir, "floor.heights.tif")
 	floor := seaFloor(t, mapPath)
 	o := sim.StandardSurvey()
-	// A minute before midnight.
-	o.StartNs = time.Date(2030, 5, 1, 23, 59, 0, 0, time.UTC).UnixNano()
-	o.DurationS, o.StartSigmaM, o.MarginM, o.TideM = seconds, 30, 200, 0
+	// A quarter of a minute before midnight.
+	o.StartNs = time.Date(2030, 5, 1, 23, 59, 45, 0, time.UTC).UnixNano()
+	o.DurationS, o.StartSigmaM, o.MarginM, o.TideM = seconds, 8, 200, 0
 	s, err := sim.Survey(3, floor, o)
 	if err != nil {
 		t.Fatal(err)
@@ -304,7 +304,7 @@ water_speed: {sensor: log, sigma_mps: 0.1}
 func TestImportSentences(t *testing.T) {
 	t.Parallel()
 	dir := t.TempDir()
-	d, drivePath, mapPath := surveyed(t, dir, 120)
+	d, drivePath, mapPath := surveyed(t, dir, 30)
 	log := writeText(t, filepath.Join(dir, "craft.nmea"), sentencesOf(t, d))
 	suite := writeText(t, filepath.Join(dir, "craft.yaml"), surveySuite)
 	options := writeText(t, filepath.Join(dir, "craft.sentences.yaml"), surveySentences)
@@ -312,7 +312,7 @@ func TestImportSentences(t *testing.T) {
 	start := fmt.Sprintf("%.12f,%.12f,%g", lon, lat, d.Header.Start.SigmaM)
 	imported := filepath.Join(dir, "craft"+drivefile.Suffix)
 	text := good(t, "import", log, "-o", imported, "--vehicle", "craft", "--map", "floor", "--suite", "craft", "--start", start, "--sentences", options)
-	if !strings.Contains(text, fmt.Sprintf("%d measurements and 0 truths", len(d.Events))) || !strings.Contains(text, "2030-05-02T00:01:00Z") || strings.Contains(text, "refused") {
+	if !strings.Contains(text, fmt.Sprintf("%d measurements and 0 truths", len(d.Events))) || !strings.Contains(text, "2030-05-02T00:00:15Z") || strings.Contains(text, "refused") {
 		t.Errorf("import says %s", text)
 	}
 	// Every measurement comes back within half of its last digit.
@@ -338,8 +338,8 @@ func TestImportSentences(t *testing.T) {
 		}
 	}
 	// What is measured moves by δ ≤ 2.6e-5 σ each. In a linear problem the mean
-	// then moves by at most √(Σ(δ/σ)²) of its own sigma: 5e-4 for 360 of them.
-	agree(t, replayed(t, drivePath, mapPath, "--suite", suite), replayed(t, imported, mapPath, "--suite", suite), 5e-4)
+	// then moves by at most √(Σ(δ/σ)²) of its own sigma: 2.5e-4 for 90 of them.
+	agree(t, replayed(t, drivePath, mapPath, "--suite", suite), replayed(t, imported, mapPath, "--suite", suite), 2.5e-4)
 
 	// Dead reckoning: the same craft without a heading to estimate. Its water
 	// stands still.
@@ -355,7 +355,7 @@ func TestImportSentences(t *testing.T) {
 		t.Fatal(err)
 	}
 	t.Logf("reckoned: %.1f m from the truth, sigma %.1f m", off, end.sigmaM)
-	// The start's sigma was 30 m along each axis.
+	// The start's sigma was 8 m along each axis.
 	if !(off < 4*end.sigmaM) || !(end.sigmaM < 10) {
 		t.Errorf("%.1f m from the truth with a sigma of %.1f m", off, end.sigmaM)
 	}
