@@ -115,8 +115,7 @@ func parseConfig(name string, text []byte, keys []string) (values map[string]con
 func plain(n ast.Node) (string, bool) {
 	switch n.(type) {
 	case *ast.StringNode, *ast.IntegerNode, *ast.FloatNode, *ast.BoolNode:
-		text := n.GetToken().Value
-		return text, text != ""
+		return n.GetToken().Value, true
 	}
 	return "", false
 }
