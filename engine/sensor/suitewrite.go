@@ -63,4 +63,3 @@ func (s *Suite) estimate(name string, n Nuisance, kinds ...string) {
 		}
 	}
 }
-
