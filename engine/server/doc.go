@@ -10,5 +10,13 @@
 // after the last batch that was acknowledged; a stream that is opened takes
 // over from the one before, which may be half open.
 //
+// A hub passes what owners release on to those who follow. Each follower has a
+// slot for each vehicle, of bounded size; an owner fills it and never waits.
+// What takes time, a region or a belief's picture, an owner adds when some
+// follower is about to be told, once for all who ask the same.
+//
+// An atlas counts the sessions of each map. One that is replaced goes on under
+// the drives that are on it, and is closed when the last one leaves.
+//
 // Nothing is durable yet: replies say so.
 package server
