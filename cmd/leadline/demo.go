@@ -145,8 +145,6 @@ func (r *rehearsal) scene(s scenes.Scene) error {
 	if err != nil {
 		return err
 	}
-	out.Licence = m.licence()
-	r.say("   licence   %s\n", out.Licence)
 	d, err := s.Drive(r.Seed, m.Roads, m.Heights)
 	m.Close()
 	if err != nil {

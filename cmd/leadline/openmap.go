@@ -107,11 +107,3 @@ func (m *mapFile) field() geo.Field {
 	}
 	return m.Heights
 }
-
-// licence is what the map says of its own.
-func (m *mapFile) licence() string {
-	if m.Roads != nil {
-		return m.Roads.Data().Licence
-	}
-	return m.Heights.Meta().Licence
-}

@@ -117,14 +117,24 @@ func (r *rehearsal) compile(s *rehearsed, source, kind string, args []string) er
 	s.MapImage = r.path(mapName(s.Map) + ".png")
 	for _, earlier := range r.Scenes {
 		if earlier.Map == s.Map {
+			s.Licence = earlier.Licence
 			return nil
 		}
 	}
 	if _, err := r.command(append([]string{"map", kind, source, "-o", s.Map}, args...)...); err != nil {
 		return err
 	}
-	_, err := r.command("map", "check", s.Map, "--png", s.MapImage)
-	return err
+	text, err := r.command("map", "check", s.Map, "--png", s.MapImage, "--json")
+	if err != nil {
+		return err
+	}
+	if err := json.Unmarshal(text, &struct {
+		Licence *string `json:"licence"`
+	}{&s.Licence}); err != nil {
+		return fmt.Errorf("what map check printed: %w", err)
+	}
+	r.say("   licence   %s\n", s.Licence)
+	return nil
 }
 
 // replay replays the drive and prints how good it is.

@@ -30,8 +30,11 @@ func TestServeLogs(t *testing.T) {
 		said[entry["msg"].(string)] = entry
 	}
 	for message, key := range map[string]string{
-		"serving": "version", "drive opened": "vehicle", "drive ended": "vehicle", "stopping": "signal", "stopped": "msg",
+		"serving": "version", "drive opened": "vehicle", "first located": "vehicle", "drive ended": "vehicle", "stopping": "signal", "stopped": "msg",
 	} {
+		if !strings.Contains(readPage(t, "README.md"), "`"+message+"`") {
+			t.Errorf("README.md does not say what %q is", message)
+		}
 		if e := said[message]; e == nil || e[key] == nil {
 			t.Errorf("the log has no %q with %q:\n%s", message, key, srv.log)
 		}
@@ -45,7 +48,7 @@ func TestServeLogs(t *testing.T) {
 func TestLogLevel(t *testing.T) {
 	t.Parallel()
 	town, _ := compiledTown(t, t.TempDir(), 1)
-	srv := serveMaps(t, "--map", town, "--log-level", "warn")
+	srv := serveMaps(t, "--map", town, "--log-level", "error")
 	srv.stop(t)
 	if srv.log.String() != "" {
 		t.Errorf("the log says %s", srv.log)
