@@ -40,11 +40,11 @@ func (g *Ground) places(b geo.Box) (at plotter.XYs, names []string) {
 	return at, names
 }
 
-// margin widens a box by a tenth, to at least 200 m and a third of its longer
-// side.
+// margin widens a box by a tenth, to at least 200 m and six tenths of its longer
+// side, so that there is room for the texts.
 func margin(b geo.Box) geo.Box {
 	wide, high := b.Max.E-b.Min.E, b.Max.N-b.Min.N
-	least := math.Max(200, math.Max(wide, high)/3)
+	least := math.Max(200, 0.6*math.Max(wide, high))
 	grow := func(lo, hi float64) (float64, float64) {
 		extra := math.Max(0.1*(hi-lo), (least-(hi-lo))/2)
 		return lo - extra, hi + extra

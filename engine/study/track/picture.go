@@ -206,6 +206,9 @@ func save(w io.Writer, p *plot.Plot, wide, high float64, entries int) error {
 		width += wantW - (d.Max.X - d.Min.X)
 		height += wantH - (d.Max.Y - d.Min.Y)
 	}
+	if w := p.Title.TextStyle.Width(p.Title.Text); w > width { // the drive's name may be long
+		p.Title.TextStyle.Font.Size *= width / w
+	}
 	pad := vg.Points(10)
 	img := vgimg.NewWith(vgimg.UseWH(width+2*pad, height+keyH+2*pad), vgimg.UseDPI(pictureDPI), vgimg.UseBackgroundColor(color.White))
 	c := draw.New(img)

@@ -196,6 +196,21 @@ func TestPicture(t *testing.T) {
 	if with, without := draw(walk(), places)[placeColour], n[placeColour]; with < 20 || without > 0 {
 		t.Errorf("%d pixels of places, %d without any", with, without)
 	}
+	long := walk()
+	long.Drive = strings.Repeat("a long name ", 12)
+	var b bytes.Buffer
+	if err := long.Picture(&b, roads); err != nil {
+		t.Fatal(err)
+	}
+	img, err := png.Decode(&b)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for y := range img.Bounds().Dy() {
+		if c := color.GrayModel.Convert(img.At(2, y)).(color.Gray); c.Y != 255 {
+			t.Fatal("a long title is cut off")
+		}
+	}
 	never := walk()
 	never.Posteriors, never.Truth = never.Posteriors[:2], nil
 	if n := draw(never, roads); n[searchColour] < 10 || n[meanColour]+n[truthColour] > 0 {
