@@ -23,6 +23,8 @@ type Belief struct {
 	// Counts since the belief was seeded, as fractions of the whole mass.
 	Pruned  float64 // too little to carry on
 	LeftMap float64 // went over the end of a line that leads nowhere
+	// Restarted was given to places that the belief had not followed (Scatter).
+	Restarted float64
 }
 
 // Gaussians are the columns of a belief, one entry a Gaussian, in ascending

@@ -203,7 +203,8 @@ func (s *Session) cellM() float64 {
 
 // Cells of a wide belief on lines are coarse: below maxCells/refineShare a
 // level finer is affordable (each level doubles the Gaussians at most), above
-// maxCells a coarser one is needed.
+// maxCells a coarser one is needed. In a gap, which only widens a belief, cells
+// are not refined.
 const refineShare = 8
 
 // adapt follows the belief's width with the resolution.
@@ -222,7 +223,7 @@ func (s *Session) adapt() {
 	switch {
 	case n > s.maxCells && b.Level < s.lines.Levels()-1:
 		filter.Relevel(b, s.lines, b.Level+1, &s.work)
-	case n < s.maxCells/refineShare && b.Level > 0:
+	case n < s.maxCells/refineShare && b.Level > 0 && s.state.gapAgeS == 0:
 		filter.Relevel(b, s.lines, b.Level-1, &s.work)
 	}
 }

@@ -36,7 +36,7 @@ func (s *Session) read(sum *summary.Summarizer, dst *summary.Posterior) error {
 	in := summary.Input{
 		TimeNS: int64(st.time), Frame: s.space.Frame(), Belief: b, Cloud: &s.cloud,
 		Speed: st.speed, Evidence: st.evidence, LogEvidence: st.logEvidence,
-		Accepted: st.processed, Refused: s.refused,
+		Accepted: st.processed, Refused: s.refused, RestartMass: b.Restarted,
 	}
 	if s.lines != nil {
 		in.Lines = s.lines.Lines(b.Level)

@@ -18,6 +18,7 @@ const roadSensor = "road"
 // sensors say together depends on how other measurements cut it. Only a stride
 // that is measured all the way stays whole.
 func (s *Session) move(to sensor.Time) {
+	s.followed = 0
 	from := s.state.time
 	if stride := s.log.events[s.log.next].Time < to; stride {
 		s.gather(from, to)
@@ -104,13 +105,45 @@ func (s *Session) gather(from, to sensor.Time) {
 	s.spans(from, to, m.Add)
 }
 
-// predict moves the belief by the motion that was gathered.
+// predict moves the belief by the motion that was gathered. A displacement over
+// ground that reaches far on roads is taken in parts of time, since the road's
+// direction decides how much of it is along the road.
 func (s *Session) predict() {
-	st, m := &s.state, &s.motion
-	step, err := m.Step(st.belief.Quantities, s.dim, s.space.Frame(), st.pose)
+	from, to := s.motion.From, s.motion.To
+	step := s.motionStep()
+	n := sensor.Time(1)
+	if s.lines != nil && step.Local != nil {
+		n = min(sensor.Time(math.Ceil(s.motion.TravelledM()/partShiftM)), maxShifts, to-from)
+	}
+	if n <= 1 {
+		s.predictBy(step)
+		return
+	}
+	since := from
+	for i := sensor.Time(1); since < to; i++ {
+		until := from + (to-from)*i/n
+		if s.followed += s.part(0); s.followed > s.maxFollowed() {
+			until = to // the rest at once
+		}
+		s.gather(since, until)
+		s.predictBy(s.motionStep())
+		since = until
+	}
+}
+
+// motionStep is the step of the motion that was gathered.
+func (s *Session) motionStep() filter.Step {
+	st := &s.state
+	step, err := s.motion.Step(st.belief.Quantities, s.dim, s.space.Frame(), st.pose)
 	if err != nil {
 		panic(fmt.Sprintf("session: %v", err)) // Supports refuses what a step cannot take
 	}
+	return step
+}
+
+// predictBy moves the belief by a step and keeps what the motion tells.
+func (s *Session) predictBy(step filter.Step) {
+	st, m := &s.state, &s.motion
 	s.spread(step)
 	s.watched(Change{From: m.From, Time: m.To})
 	st.bend = m.BendAfter()
@@ -135,89 +168,6 @@ func (s *Session) predict() {
 	if l := s.followsRoad(travelledM); l != nil {
 		s.weigh(sensor.Event{Time: m.To, Sensor: roadSensor, Measurement: sensor.Turn{}}, l)
 	}
-}
-
-// A step that would make a belief much wider is taken in parts, with the
-// resolution adapted between them. At the fine spacing of a located belief a
-// long gap would fill millions of cells of a lattice; it is spread by at most
-// maxWidening of its own scale at once. On lines each Gaussian of a wide spread
-// would follow every way through many junctions, whose number grows
-// exponentially; in parts of partM, some three of which reach over a block of
-// houses, the ways meet and merge. The parts add up to the whole, but for a
-// spread on lines beyond sqrt(maxParts)·2·partM (5.4 km, after some half an
-// hour without any event), which is taken as that.
-const (
-	maxWidening = 2.0
-	partM       = 30.0
-	fewParts    = 512 // beyond, they are up to twice as long
-	maxParts    = 8192
-	partShiftM  = 50.0
-)
-
-// spread predicts the belief by a step.
-func (s *Session) spread(step filter.Step) {
-	b := s.state.belief
-	if s.lines != nil {
-		step.Q[0] = math.Min(step.Q[0], maxParts*4*partM*partM)
-	}
-	whole := step.Local != nil || s.lines == nil && len(b.Quantities) > 0
-	for left := 1.0; ; {
-		share := left
-		if !whole {
-			share = math.Min(left, s.share(step))
-		}
-		filter.Predict(b, s.space, portion(step, share), &s.work)
-		if share == left {
-			return
-		}
-		left -= share
-		if s.lines != nil { // now wide: coarse cells do, until adapt refines them
-			for step.Q[0] > partM*partM && b.Level < s.lines.Levels()-1 && s.cellsM[b.Level+1] <= partM/2 {
-				filter.Relevel(b, s.lines, b.Level+1, &s.work)
-			}
-			continue
-		}
-		for range maxAdaptations {
-			if !filter.Adapt(b, s.maxCells, &s.work) {
-				break
-			}
-		}
-	}
-}
-
-// maxAdaptations bounds the halvings or doublings of a spacing at one time.
-const maxAdaptations = 64
-
-// share is how much of a step may be taken at once.
-func (s *Session) share(step filter.Step) float64 {
-	if s.lines != nil {
-		part := min(max(partM*partM, step.Q[0]/fewParts), 4*partM*partM)
-		return math.Min(part/step.Q[0], partShiftM/math.Abs(step.Add[0]))
-	}
-	scale := maxWidening * s.state.belief.ScaleM()
-	return scale * scale / math.Max(step.Q[0], step.Q[2])
-}
-
-// portion is a part of a step. What F does to the positions comes from
-// quantities that it leaves alone, so that parts of F - I add up as well.
-func portion(step filter.Step, share float64) filter.Step {
-	if share == 1 {
-		return step
-	}
-	k := len(step.Add)
-	part := filter.NewStep(k)
-	for i, v := range step.Add {
-		part.Add[i] = share * v
-	}
-	for i, v := range step.Q {
-		part.Q[i] = share * v
-	}
-	for i, v := range step.F {
-		if row, col := i/k, i%k; row != col && v != 0 {
-			part.SetF(row, col, share*v)
-		}
-	}
-	return part
 }
 
 // followsRoad is what the last motion says about the road's direction; nil on

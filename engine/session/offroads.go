@@ -34,7 +34,7 @@ func (s *Session) leaveRoads(addM2 float64) {
 	p := &filter.Belief{
 		Map: b.Map, Dim: 2, Lattice: filter.Lattice{SpacingM: h},
 		Quantities: []filter.Quantity{{Name: filter.East}, {Name: filter.North}},
-		Pruned:     b.Pruned, LeftMap: b.LeftMap,
+		Pruned:     b.Pruned, LeftMap: b.LeftMap, Restarted: b.Restarted,
 	}
 	type entry struct {
 		key uint64

@@ -120,6 +120,8 @@ type Session struct {
 	hold, still                    sensor.Time
 	wideSize, hugeSize, maxWaiting int // the constants, less in tests
 	maxCarried                     float64
+	followed                       float64 // work of the present move
+	followLimit                    float64 // in tests, see maxFollowed
 
 	state  state
 	snaps  []snapshot

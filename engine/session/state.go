@@ -23,7 +23,7 @@ type state struct {
 	bend        sensor.Bend
 	pace        pace
 	speed       summary.Speed // now: of pace, or what a sensor of speed said
-	odometerM   float64 // distance measured since the start
+	odometerM   float64       // distance measured since the start
 	// Since the last posterior: evidence (at most maxEvidence), gaps, when
 	// that was, and whether there has been a step.
 	evidence    []summary.Evidence
