@@ -14,7 +14,11 @@ func TestServeLogs(t *testing.T) {
 	t.Parallel()
 	town, drive := compiledTown(t, t.TempDir(), 10)
 	srv := serveMaps(t, "--map", town, "--log-format", "json")
-	good(t, "feed", drive, "--to", srv.address)
+	var closed struct{ Version string }
+	readJSON(t, good(t, "feed", drive, "--to", srv.address, "--json"), &closed)
+	if line := good(t, "--version"); line != "leadline "+closed.Version+"\n" {
+		t.Errorf("the server answers by version %q, and the program is %s", closed.Version, line)
+	}
 	if status := srv.stop(t); status != 0 {
 		t.Errorf("status %d", status)
 	}
