@@ -76,13 +76,6 @@ func (s *Session) add(ev sensor.Event) ([]*summary.Posterior, error) {
 	if err := s.plausible(ev); err != nil {
 		return nil, err
 	}
-	i, found := s.log.find(ev)
-	if found {
-		if reflect.DeepEqual(s.log.events[i].Measurement, ev.Measurement) {
-			return nil, nil
-		}
-		return nil, &Refusal{Conflicting, fmt.Sprintf("sensor %q already sent another measurement with this time and the number %d: number them", ev.Sensor, ev.Number)}
-	}
 	if s.log.heard {
 		ahead := ev.Time.Seconds(s.log.latest)
 		if ahead > maxJumpS {
@@ -91,6 +84,51 @@ func (s *Session) add(ev sensor.Event) ([]*summary.Posterior, error) {
 		if !s.state.begun && -ahead > maxJumpS {
 			return nil, &Refusal{TooLate, fmt.Sprintf("it is %.0f s before the latest event: check the sensor's clock", -ahead)}
 		}
+	}
+	if s.isAhead(ev) {
+		events, err := s.lead(ev)
+		if err != nil {
+			return nil, err
+		}
+		return s.take(events, ev)
+	}
+	if err := s.precede(ev); err != nil {
+		return nil, err
+	}
+	_, again := s.log.find(ev)
+	out, err := s.enter(ev)
+	if err == nil && !again {
+		s.goOn(ev.Sensor)
+	}
+	return out, err
+}
+
+// take adds events and returns what they release. The error is that of the event
+// ev; others among them that are refused were accepted before.
+func (s *Session) take(events []sensor.Event, ev sensor.Event) (out []*summary.Posterior, err error) {
+	slices.SortStableFunc(events, sensor.Event.Compare)
+	for _, e := range events {
+		ps, refusal := s.enter(e)
+		out = append(out, ps...)
+		switch {
+		case refusal == nil:
+		case e.Compare(ev) == 0:
+			err = refusal
+		default:
+			s.retract(1)
+		}
+	}
+	return out, err
+}
+
+// enter puts an event into the log and computes what is due.
+func (s *Session) enter(ev sensor.Event) ([]*summary.Posterior, error) {
+	i, found := s.log.find(ev)
+	if found {
+		if reflect.DeepEqual(s.log.events[i].Measurement, ev.Measurement) {
+			return nil, nil
+		}
+		return nil, &Refusal{Conflicting, fmt.Sprintf("sensor %q already sent another measurement with this time and the number %d: number them", ev.Sensor, ev.Number)}
 	}
 	from, err := s.affects(ev)
 	if err != nil {
@@ -115,34 +153,41 @@ func (s *Session) add(ev sensor.Event) ([]*summary.Posterior, error) {
 	return append(out, s.relieve()...), nil
 }
 
-// tooFast is how many times max_speed_mps no vehicle goes.
-const tooFast = 10
+// tooFast is how many times max_speed_mps no vehicle goes, and tooFarM how far
+// none goes in one increment: known places are at most so far from the middle of
+// a map.
+const (
+	tooFast = 10
+	tooFarM = 1.5e6
+)
 
-// plausible refuses a motion on roads that no vehicle makes: following it
-// would lead through every way of a map many times over.
+// plausible refuses a motion that no vehicle makes: on roads, following it would
+// lead through every way of a map many times over; on a plane, it would leave
+// every map.
 func (s *Session) plausible(ev sensor.Event) error {
-	if s.dim != 1 {
-		return nil
-	}
 	since, _ := sensor.Since(ev.Measurement)
 	span := ev.Time.Seconds(since)
 	var d, sigma float64
 	switch m := ev.Measurement.(type) {
 	case sensor.Travel:
-		d, sigma = m.DistanceM, m.SigmaM
+		d, sigma = math.Abs(m.DistanceM), m.SigmaM
 	case sensor.BodyDisplacement:
-		d, sigma = math.Max(math.Abs(m.ForwardM), math.Abs(m.RightM)), m.SigmaForwardM
+		d, sigma = math.Max(math.Abs(m.ForwardM), math.Abs(m.RightM)), math.Max(m.SigmaForwardM, m.SigmaRightM)
 	case sensor.Displacement:
 		d, sigma = math.Max(math.Abs(m.EastM), math.Abs(m.NorthM)), math.Sqrt(m.CovM2[0]+m.CovM2[2])
 	case sensor.Speed:
-		d, sigma, span = m.MPS, m.SigmaMPS, 1
+		d, sigma, span = math.Abs(m.MPS), m.SigmaMPS, 1
 	default:
 		return nil
 	}
 	// 100 m more, for increments of a few milliseconds.
-	if most := tooFast*s.suite.Vehicle.MaxSpeedMPS*span + 100; math.Abs(d) > most || sigma > most {
+	if most := tooFast*s.suite.Vehicle.MaxSpeedMPS*span + 100; d > most || sigma > most {
 		return &Refusal{Unusable, fmt.Sprintf("sensor %q: %s: %.0f m with a sigma of %.0f m in %.3f s is beyond %d times the suite's max_speed_mps, %g: check its unit, leave out what tells nothing, or raise max_speed_mps",
 			ev.Sensor, ev.Measurement.Kind(), d, sigma, span, tooFast, s.suite.Vehicle.MaxSpeedMPS)}
+	}
+	if d > tooFarM || sigma > tooFarM {
+		return &Refusal{Unusable, fmt.Sprintf("sensor %q: %s: %.0f m with a sigma of %.0f m is beyond %.0f km, farther than any map reaches: check its unit, or leave out what tells nothing",
+			ev.Sensor, ev.Measurement.Kind(), d, sigma, tooFarM/1000)}
 	}
 	return nil
 }
@@ -204,7 +249,8 @@ func (s *Session) reaches(from sensor.Time) error {
 // it are refused.
 func (s *Session) Flush() []*summary.Posterior {
 	s.withdrawn = nil
-	out := s.run(true)
+	out, _ := s.take(s.letAllGo(), sensor.Event{})
+	out = append(out, s.run(true)...)
 	if s.state.unread {
 		if p := s.summarise(); s.release(p) {
 			out = append(out, p)

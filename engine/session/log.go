@@ -18,6 +18,8 @@ type log struct {
 	heard  bool
 	// sources are what has measured motion so far, by name.
 	sources []source
+	// spoke is when each sensor was last heard, by name.
+	spoke []spoken
 	// voices are all that has been heard so far, in order.
 	voices []voice
 }
@@ -87,6 +89,7 @@ func (l *log) insert(i int, ev sensor.Event, suite *sensor.Suite) {
 	if !l.heard || ev.Time > l.latest {
 		l.heard, l.latest = true, ev.Time
 	}
+	l.hear(ev)
 	v := voiceOf(ev)
 	if j, found := slices.BinarySearchFunc(l.voices, v, voice.compare); !found {
 		l.voices = slices.Insert(l.voices, j, v)

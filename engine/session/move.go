@@ -94,6 +94,11 @@ func (s *Session) since(ev sensor.Event, before sensor.Time, hasBefore bool) sen
 	return begin
 }
 
+// endOfFrameM is how far from the middle of its map a vehicle on a plane goes:
+// the frame means something up to there, some 3000 km, and what has gone so far
+// stays there.
+const endOfFrameM = 3e6
+
 // standstillS is for how long a standstill speaks (see sensor.Standstill).
 const standstillS = 1.0
 
@@ -144,6 +149,10 @@ func (s *Session) motionStep() filter.Step {
 // predictBy moves the belief by a step and keeps what the motion tells.
 func (s *Session) predictBy(step filter.Step) {
 	st, m := &s.state, &s.motion
+	if s.lines == nil && st.pose.At.Norm() > endOfFrameM {
+		step.Local = nil
+		step.Add[0], step.Add[1] = 0, 0
+	}
 	s.spread(step)
 	s.watched(Change{From: m.From, Time: m.To})
 	st.bend = m.BendAfter()

@@ -68,6 +68,9 @@ func TestRefusals(t *testing.T) {
 		{"barometer on water", onWater, of(sensor.Barometer{AltitudeM: 1, SigmaM: 1}), WrongSpace, []string{"barometer", "clearance"}},
 		{"road on water", onWater, of(sensor.Sighting{Road: "Long Street"}), WrongSpace, []string{"no roads", "area"}},
 		{"kilometres", onRoad, of(sensor.Travel{Since: at(10), DistanceM: 4e7, SigmaM: 1}), Unusable, []string{"40000000 m", "0.500 s", "max_speed_mps"}},
+		{"kilometres on water", onWater, of(sensor.Displacement{Since: at(10), EastM: 4e7, CovM2: [3]float64{1, 0, 1}}), Unusable, []string{`"x"`, "40000000 m", "0.500 s", "max_speed_mps"}},
+		{"off the map", onWater, of(sensor.Displacement{Since: at(10.5 - 86000), NorthM: -1.6e6, CovM2: [3]float64{1, 0, 1}}), Unusable, []string{"1600000 m", "1500 km", "check its unit"}},
+		{"no idea", onWater, of(sensor.Displacement{Since: at(10.5 - 86000), CovM2: [3]float64{9e12, 0, 1}}), Unusable, []string{"sigma of 3000000 m", "leave out"}},
 		{"tells nothing", onRoad, of(sensor.Speed{SigmaMPS: 5000}), Unusable, []string{"sigma of 5000 m", "leave out"}},
 		{"nothing", onRoad, of(nil), Unusable, []string{`"x"`, "no measurement"}},
 		{"NaN", onRoad, of(sensor.Travel{Since: at(10.4), DistanceM: math.NaN(), SigmaM: 1}), Unusable, []string{"distance_m is NaN"}},
@@ -230,6 +233,23 @@ func TestContradiction(t *testing.T) {
 				t.Errorf("what followed was not taken: %+v", with.Latest().Evidence)
 			}
 		})
+	}
+}
+
+// TestEndOfTheFrame displaces a vehicle on a plane by thousands of kilometres: it
+// stays where its frame ends, and every figure is a number.
+func TestEndOfTheFrame(t *testing.T) {
+	p := sea()
+	s := open(t, Config{Space: p, Start: pointStart(p, geo.Point{}, 50), MaxCells: 2000})
+	for i := range 12 {
+		mustAdd(t, s, sensor.Event{Time: at(float64(i+1) * 4000), Sensor: "ins", Measurement: sensor.Displacement{
+			Since: at(float64(i) * 4000), EastM: 1.4e6, NorthM: 1e5, CovM2: [3]float64{100, 0, 100},
+		}})
+	}
+	s.Flush()
+	q := s.Latest()
+	if r := q.MeanFrame.Norm(); !(r > endOfFrameM && r < 2*endOfFrameM) || q.Mean.Check() != nil || !(q.CovFrame.EE < 1e6) {
+		t.Errorf("%v, %v, %+v", q.MeanFrame, q.Mean, q.CovFrame)
 	}
 }
 

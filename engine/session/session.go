@@ -138,6 +138,7 @@ type Session struct {
 	superseded []*summary.Posterior
 	withdrawn  []sensor.Time // by the last Add or Flush
 	hasher     *summary.Hasher
+	leads      []lead
 	accepted   uint64
 	refused    uint64
 
