@@ -112,9 +112,9 @@ func agile(t testing.TB, seed uint64) *scene {
 func surveyor(t testing.TB, seed uint64) *scene { return survey(t, seed, 120) }
 
 var plants = []plant{
-	{name: "car: gyro reversed", scene: plainCar, spoil: each(func(m *sensor.Turn) { m.AngleRad *= -1 }), want: "turn sign reversed", shortS: 150},
+	{name: "car: gyro reversed", scene: plainCar, spoil: each(func(m *sensor.Turn) { m.AngleRad *= -1 }), want: "turn sign reversed", shortS: 110},
 	{name: "car: distances ×10", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 10 }), want: "distances ten times too large"},
-	{name: "car: distances ×0.1", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 0.1 }), want: "distances ten times too small", shortS: 120},
+	{name: "car: distances ×0.1", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 0.1 }), want: "distances ten times too small", shortS: 80},
 	{name: "car: travel reversed", scene: fittedCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= -1 }), want: "forward and backward reversed"},
 	{name: "car: fixes 1 s late", scene: fittedCar, spoil: late("fix", 1), want: "times late", value: 1, shortS: 60},
 	{name: "car: compass 1 s early", scene: fittedCar, spoil: late("compass", -1), want: "times early", value: -1},
@@ -130,7 +130,7 @@ var plants = []plant{
 	{name: "flight: heights ×0.1", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM *= 0.1; m.ClearanceM *= 0.1 }), want: "altitude and clearance ten times too small"},
 	{name: "flight: displacement ×10", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM *= 10; m.NorthM *= 10 }), want: "distances ten times too large"},
 	{name: "flight: displacement ×0.1", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM *= 0.1; m.NorthM *= 0.1 }), want: "distances ten times too small"},
-	{name: "flight: axes swapped", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM, m.NorthM = m.NorthM, m.EastM }), want: "east and north swapped", shortS: 30},
+	{name: "flight: axes swapped", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM, m.NorthM = m.NorthM, m.EastM }), want: "east and north swapped", shortS: 20},
 	{name: "flight: east reversed", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM *= -1 }), want: "east and west reversed"},
 	{name: "flight: displacement reversed", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM *= -1; m.NorthM *= -1 }), want: "whole displacement reversed"},
 	{name: "flight: altimeter 1 s late", scene: agile, spoil: late("altimeter", 1), want: "times late", value: 1},

@@ -109,7 +109,7 @@ func car(t testing.TB, seed uint64, durationS float64, edit func(*sim.CarOptions
 	d, err := w.Drive(seed, o)
 	must(t, d, err)
 	c := drives.Convert(d, "town", "")
-	return &scene{session.Config{Space: m, Names: m}, c, d}
+	return &scene{session.Config{Space: m, Names: m, MaxCells: 2000}, c, d}
 }
 
 func flight(t testing.TB, seed uint64, durationS float64, edit func(*sim.FlightOptions)) *scene {
@@ -122,7 +122,7 @@ func flight(t testing.TB, seed uint64, durationS float64, edit func(*sim.FlightO
 	}
 	d, err := sim.Flight(seed, r, o)
 	must(t, d, err)
-	return &scene{session.Config{Space: over(r)}, drives.Convert(d, "relief", ""), d}
+	return &scene{session.Config{Space: over(r), MaxCells: 2000}, drives.Convert(d, "relief", ""), d}
 }
 
 func survey(t testing.TB, seed uint64, durationS float64) *scene {
@@ -132,7 +132,7 @@ func survey(t testing.TB, seed uint64, durationS float64) *scene {
 	o.DurationS, o.SpeedMPS, o.StartSigmaM, o.TideM, o.MarginM, o.LegM = durationS, 5, 30, 0.3, 500, 400
 	d, err := sim.Survey(seed, r, o)
 	must(t, d, err)
-	s := &scene{session.Config{Space: over(r)}, drives.Convert(d, "sea floor", ""), d}
+	s := &scene{session.Config{Space: over(r), MaxCells: 2000}, drives.Convert(d, "sea floor", ""), d}
 	// The log gives the compass's course along, so that no heading need be
 	// estimated.
 	var events []sensor.Event
