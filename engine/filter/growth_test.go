@@ -18,7 +18,7 @@ type growthMotion struct{ k float64 }
 
 func (growthMotion) Wants() filter.Wants { return filter.WantPosition }
 
-func (m growthMotion) Local(add, f []float64, at *filter.Columns, _ []float64) {
+func (m growthMotion) Local(add, f []float64, at *filter.Columns, _, _ []float64) {
 	for i, n := range at.North {
 		x := n - growthHalfM
 		d := 1 + x*x

@@ -106,7 +106,7 @@ func (b *Belief) move(space Space, step Step, w *Workspace) {
 		n := len(b.Key)
 		w.add = resize(w.add, n*b.Dim)
 		w.f = resize(w.f, n*b.Dim*k)
-		step.Local.Local(w.add, w.f, &w.at, b.Mean)
+		step.Local.Local(w.add, w.f, &w.at, b.Mean, b.Cov)
 		mv.stepAdd = append([]float64(nil), step.Add...)
 		mv.stepF = make([]float64, k*k)
 		for d := range k {

@@ -52,10 +52,12 @@ type Step struct {
 // Local computes position-dependent motion for n Gaussians: the shift of the
 // position quantities (add, n×Dim) and their derivatives with respect to all
 // quantities (f, n×Dim×K, including the 1 of a position on itself), given the
-// columns at the Gaussians' positions and their means (n×K).
+// columns at the Gaussians' positions, their means (n×K) and covariances (n times
+// packed). Where the motion is not linear over a Gaussian, both may be the means
+// over it, instead of the values at its mean.
 type Local interface {
 	Wants() Wants
-	Local(add, f []float64, at *Columns, mean []float64)
+	Local(add, f []float64, at *Columns, mean, cov []float64)
 }
 
 // NewStep makes a step over k quantities that changes nothing.

@@ -169,13 +169,20 @@ func (l *bodyMotion) Wants() filter.Wants { return 0 }
 //
 //	Δ = k·[(f + s·f_scaled)·forward + r·right],
 //	∂Δ/∂heading = k·[(f + s·f_scaled)·right - r·forward],  ∂Δ/∂s = k·f_scaled·forward.
-func (l *bodyMotion) Local(add, f []float64, at *filter.Columns, mean []float64) {
+//
+// Over a heading of variance v both are shorter by e^{-v/2} on average: the arc
+// that the headings make is taken as the straight line through its middle.
+// Source: characteristic function of the normal distribution.
+func (l *bodyMotion) Local(add, f []float64, at *filter.Columns, mean, cov []float64) {
+	packed := l.k * (l.k + 1) / 2
 	for i := 0; i*l.k < len(mean); i++ {
 		x := mean[i*l.k : i*l.k+l.k]
 		row := f[i*2*l.k : (i+1)*2*l.k]
 		clear(row)
 		row[0], row[l.k+1] = 1, 1
 		s, c := kernel.Sincos(x[l.heading] + 0.5*l.b.turn)
+		short := kernel.Exp(-0.5 * cov[i*packed+filter.Packed(l.heading, l.heading)])
+		s, c = float64(short*s), float64(short*c)
 		fwd, right := l.b.forward, l.b.right
 		if l.scale >= 0 {
 			fwd += float64(x[l.scale] * l.b.scaled)
@@ -242,7 +249,7 @@ func (l *alongRoad) Wants() filter.Wants { return filter.WantPosition | filter.W
 // chord points along the direction at its middle, t(s/2), s = D·t(0) to first
 // order: the shift is D·t(s/2), its derivative along the road κ·D·n with n
 // the road's right-hand normal there.
-func (l *alongRoad) Local(add, f []float64, at *filter.Columns, mean []float64) {
+func (l *alongRoad) Local(add, f []float64, at *filter.Columns, mean, _ []float64) {
 	n := at.Len()
 	if n == 0 {
 		return

@@ -39,8 +39,8 @@ func TestGroundStepOnAPlane(t *testing.T) {
 	}
 }
 
-// The local motion through filter.Predict: the mean is moved by the motion at
-// the mean heading, and the covariance by its derivatives, F C Fᵀ + Q.
+// The local motion through filter.Predict: the mean is moved by the mean motion
+// over the headings, and the covariance by its derivatives, F C Fᵀ + Q.
 func TestBodyMotionThroughPredict(t *testing.T) {
 	w := newWorld()
 	qs := planeQuantities()
@@ -60,8 +60,10 @@ func TestBodyMotionThroughPredict(t *testing.T) {
 	if len(b.Key) != 1 {
 		t.Fatalf("%d Gaussians", len(b.Key))
 	}
-	// By hand: ψ' = 0.8, forward 8·1.05, right 0.5.
+	// By hand: ψ' = 0.8, forward 8·1.05, right 0.5; a normal heading of variance
+	// 0.01 takes 0.5 % off the way.
 	sin, cos := math.Sincos(psi + 0.1)
+	sin, cos = sin*math.Exp(-0.005), cos*math.Exp(-0.005)
 	f, r := 8*1.05, 0.5
 	dE, dN := f*sin+r*cos, f*cos-r*sin
 	want := []float64{1 + dE, 2 + dN, psi + 0.2, scale}
@@ -94,6 +96,13 @@ func TestBodyMotionThroughPredict(t *testing.T) {
 			for j := range i + 1 {
 				sq[i][j] += d * (x[j] - want[j])
 			}
+		}
+	}
+	for i := range 2 {
+		// The mean of the draws, whose sigma is 2 m/√4e5; the noise of half of the
+		// turn, 1e-4 of variance, is left out: 4e-4 m.
+		if m := sum[i] / draws; math.Abs(m) > 4*2/math.Sqrt(draws)+1e-3 {
+			t.Errorf("mean %d is %v off the draws'", i, m)
 		}
 	}
 	for i := range 4 {
@@ -153,7 +162,7 @@ func TestDisplacementAlongARoad(t *testing.T) {
 		}
 		cols := w.road(st.Local.Wants(), []float64{s0})
 		add, f := []float64{0}, []float64{0}
-		st.Local.Local(add, f, cols, []float64{0})
+		st.Local.Local(add, f, cols, []float64{0}, []float64{0})
 		// The chord is short by s³/24R² = 7e-5 m, and the frame is turned by
 		// the convergence at its middle, 0.
 		if !near(add[0], want, 2e-4) || !near(f[0], 1, 2e-2) {
