@@ -46,7 +46,7 @@ type Report struct {
 	OpeningS     float64 `json:"opening_s"`
 	Measurements int     `json:"measurements"`
 	// Tried is how many mistakes were tried, each value that was looked for
-	// counted; NeededNats the gain from which one is named (see Needed).
+	// counted; NeededNats the gain from which one is named (see verdict.go).
 	Tried      int     `json:"tried"`
 	NeededNats float64 `json:"needed_nats"`
 	// Fits is how the log fits as it stands.
@@ -74,7 +74,8 @@ type Candidate struct {
 	Named  bool     `json:"named"`
 	Remedy string   `json:"remedy,omitempty"`
 
-	mistake *Mistake
+	mistake  *Mistake
+	eligible bool // it came to the end, and is large enough for a mistake
 }
 
 // Text names the mistake with its sensor and value.

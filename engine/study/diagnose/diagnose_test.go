@@ -217,3 +217,28 @@ func TestOpening(t *testing.T) {
 		}
 	}
 }
+
+// TestRefusedMotions: where the log as it stands has motions that no vehicle
+// makes, it is compared all the same, and only what mends them goes on.
+func TestRefusedMotions(t *testing.T) {
+	s := plainCar(t, 1)
+	s.config.Suite = &sensor.Suite{Vehicle: sensor.Vehicle{MaxSpeedMPS: 0.1}}
+	most := 0.0
+	for i := range s.drive.Events {
+		if m, ok := s.drive.Events[i].Measurement.(sensor.Travel); ok {
+			m.DistanceM *= 10
+			most = math.Max(most, m.DistanceM)
+			s.drive.Events[i].Measurement = m
+		}
+	}
+	if most < 10*0.1+100 {
+		t.Fatalf("at most %v m in a second are not refused", most)
+	}
+	r, err := Run(s.drive, s.config, Options{MaxCells: 1000, Each: accept.Each})
+	must(t, r, err)
+	for _, k := range r.Candidates {
+		if mends := k.Mistake == "distances ten times too large"; k.Named != mends || (k.GivenUpAfter == nil) != mends {
+			t.Errorf("%s: named %v, given up after %v, gain %v", k.Text(), k.Named, k.GivenUpAfter, k.GainNats)
+		}
+	}
+}

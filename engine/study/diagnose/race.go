@@ -29,6 +29,9 @@ type entrant struct {
 	nats    []float64 // by round, as far as it came
 }
 
+// isLog reports that it is the log as it stands.
+func (e *entrant) isLog() bool { return e.mistake.of == nil }
+
 func (e *entrant) last() float64 { return e.nats[len(e.nats)-1] }
 
 // behindNats is by how much an entrant may fall behind the best and stay. If
@@ -103,7 +106,7 @@ func keep(es []*entrant) []*entrant {
 	}
 	better := func(e, than *entrant) bool { return than == nil || e.last() > than.last() }
 	for _, e := range es {
-		if e.err == nil && e.run.motions > refused {
+		if e.err == nil && e.run.motions > refused && !e.isLog() {
 			e.err = errRefused
 		}
 		if e.err != nil {
@@ -122,7 +125,7 @@ func keep(es []*entrant) []*entrant {
 			continue
 		}
 		behind := behindNats
-		if e.mistake.of == nil || of[e.mistake.family] == e {
+		if e.isLog() || of[e.mistake.family] == e {
 			behind = farNats
 		}
 		if e.last() >= best.last()-behind {
@@ -134,6 +137,18 @@ func keep(es []*entrant) []*entrant {
 
 // finished reports whether an entrant came to the end.
 func (c *course) finished(e *entrant) bool { return e.err == nil && len(e.nats) == len(c.rounds) }
+
+// better reports whether an entrant came farther than another one, or as far
+// with more evidence.
+func (c *course) better(e, than *entrant) bool {
+	if than == nil || c.finished(e) != c.finished(than) {
+		return than == nil || c.finished(e)
+	}
+	if len(e.nats) != len(than.nats) {
+		return len(e.nats) > len(than.nats)
+	}
+	return e.last() > than.last()
+}
 
 // gain is by how much an entrant's evidence exceeds that of the log as it
 // stands, for as long as both ran. Where that was given up before, it counts

@@ -2,7 +2,6 @@ package diagnose
 
 import (
 	"cmp"
-	"errors"
 	"fmt"
 	"math"
 	"slices"
@@ -23,101 +22,6 @@ var logOdds = 2 * kernel.Log(99)
 
 func needed(tried int) float64 { return logOdds + kernel.Log(float64(tried)) }
 
-// tryAll fills the report's candidates and verdict.
-func (c *course) tryAll(r *Report, o Options) error {
-	discrete := catalogue(c.voices)
-	ms := append([]Mistake{{}}, discrete...)
-	searches := scans(c.voices, c.suite)
-	r.Tried = len(discrete)
-	for i := range searches {
-		r.Tried += searches[i].values()
-		ms = append(ms, searches[i].coarse()...)
-	}
-	done, steps := 0, len(c.rounds)+len(searches)
-	progress := func() {
-		if done++; o.Progress != nil {
-			o.Progress(done, steps)
-		}
-	}
-	c.tick = progress
-	es := c.race(ms)
-	c.tick = func() {}
-	base := es[0]
-	if base.err != nil && !errors.Is(base.err, errRefused) {
-		return base.err
-	}
-	var tried []*entrant
-	found := map[string]*entrant{} // looked up only
-	for _, e := range es[1:] {
-		switch {
-		case len(e.nats) == 0:
-		case e.mistake.search == nil:
-			tried = append(tried, e)
-		default:
-			if o := found[e.mistake.family]; o == nil || len(e.nats) > len(o.nats) || len(e.nats) == len(o.nats) && e.last() > o.last() {
-				found[e.mistake.family] = e
-			}
-		}
-	}
-	for i := range searches {
-		progress()
-		e := found[searches[i].family]
-		if e == nil {
-			continue
-		}
-		// A value beyond half a step from none has a coarse one that is nearer.
-		if c.finished(e) && (!c.finished(base) || e.last() > base.last()) {
-			if fine := c.refine(&searches[i], e); fine != nil {
-				e = fine
-			}
-		}
-		tried = append(tried, e)
-		if c.finished(e) && e.run.latest != nil {
-			known := c.race(searches[i].grids(o.Grids, e.run.latest.Mean))
-			r.Tried += len(known)
-			for _, e := range known {
-				if len(e.nats) > 0 {
-					tried = append(tried, e)
-				}
-			}
-		}
-	}
-	r.NeededNats = needed(r.Tried)
-	best := base
-	for _, e := range tried {
-		if c.finished(e) && (!c.finished(best) || e.last() > best.last()) {
-			best = e
-		}
-	}
-	r.Fits = base.run.log.fits(c.start)
-	r.BaseGivenUpAfter = c.givenUp(base)
-	for _, e := range tried {
-		m := e.mistake
-		k := Candidate{
-			Mistake: m.Name, Sensor: m.Sensor, Value: m.Value, Unit: m.Unit, Remedy: m.Remedy,
-			GainNats: e.gain(base, best), GivenUpAfter: c.givenUp(e), mistake: m,
-			Named: c.finished(e) && (m.search == nil || math.Abs(m.Value) >= m.search.least),
-		}
-		for _, f := range e.run.log.fits(c.start) {
-			if f.Bad {
-				k.Bad = append(k.Bad, f.Sensor)
-			}
-		}
-		r.Candidates = append(r.Candidates, k)
-	}
-	r.judge()
-	return nil
-}
-
-// givenUp is when an entrant was dropped, nil if it was not.
-func (c *course) givenUp(e *entrant) *float64 {
-	if c.finished(e) {
-		return nil
-	}
-	after := c.rounds[len(e.nats)-1].Seconds(c.start)
-	return &after
-}
-
 // judge orders the candidates, names those that explain the log and says so.
 func (r *Report) judge() {
 	slices.SortStableFunc(r.Candidates, func(a, b Candidate) int {
@@ -128,14 +32,14 @@ func (r *Report) judge() {
 	})
 	top := math.Inf(-1)
 	for _, k := range r.Candidates {
-		if k.Named {
+		if k.eligible {
 			top = math.Max(top, k.GainNats)
 		}
 	}
 	var named []*Candidate
 	for i := range r.Candidates {
 		k := &r.Candidates[i]
-		k.Named = k.Named && k.GainNats >= r.NeededNats && k.GainNats >= top-logOdds && !r.isKnown(k)
+		k.Named = k.eligible && k.GainNats >= r.NeededNats && k.GainNats >= top-logOdds && !r.isKnown(k)
 		if k.Named {
 			named = append(named, k)
 		}
