@@ -13,17 +13,19 @@ import (
 // 41 bounds the noiseless state and 100 leaves more than ten sigmas of w.
 const growthHalfM = 100
 
-// growthMotion is x' - x of the growth model, at step k.
+// growthMotion is the growth model at step k as an affine map of the position in
+// the cell, m: x' = f m + add, with x' - x = add + (f - 1) m.
 type growthMotion struct{ k float64 }
 
 func (growthMotion) Wants() filter.Wants { return filter.WantPosition }
 
-func (m growthMotion) Local(add, f []float64, at *filter.Columns, _, _ []float64) {
+func (m growthMotion) Local(add, f []float64, at *filter.Columns, mean, _ []float64) {
 	for i, n := range at.North {
 		x := n - growthHalfM
 		d := 1 + x*x
 		add[i] = 25*x/d - x/2 + 8*math.Cos(1.2*m.k)
 		f[i] = 0.5 + 25*(1-x*x)/(d*d)
+		add[i] -= (f[i] - 1) * mean[i]
 	}
 }
 
