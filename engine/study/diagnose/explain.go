@@ -83,11 +83,12 @@ func Explain(d *drivefile.Drive, c session.Config, at sensor.Time, withinS float
 	within := sensor.Time(withinS * 1e9)
 	w := &witness{s: s, sum: sum, frame: c.Space.Frame(), motions: motions(events, suite), at: at, from: at - within - sensor.Time(leadS*1e9), to: at + within}
 	s.Watch(w.see)
-	// What comes later than this cannot change what was then.
+	// What comes later than this, and did not begin before, cannot change what
+	// was then.
 	end := w.to + sensor.Time((v.LateWindowS+v.HoldS+1)*1e9)
 	for _, ev := range events {
-		if ev.Time > end {
-			break
+		if since, ok := sensor.Since(ev.Measurement); ev.Time > end && !(ok && since < w.to) {
+			continue
 		}
 		if _, err := s.Add(ev); err != nil {
 			var ref *session.Refusal
