@@ -78,7 +78,7 @@ func TestSameOverHTTP(t *testing.T) {
 		status             int
 		reason, field      string
 	}{
-		{"a bad field", leadlinev1.PositionService_Where_FullMethodName, `{"vehicles":["v"],"region_fractions":[2]}`, 400, "BAD_FIELD", "where.region_fractions"},
+		{"a bad field", leadlinev1.PositionService_Where_FullMethodName, `{"vehicles":["v"],"region_fractions":[2]}`, 400, "BAD_FIELD", "region_fractions"},
 		{"an unknown field", leadlinev1.PositionService_Where_FullMethodName, `{"vehicle":"v"}`, 400, "BAD_FIELD", ""},
 		{"too much", leadlinev1.PositionService_Where_FullMethodName, `{"vehicles":["` + strings.Repeat("v", 4000) + `"]}`, 429, "", ""},
 		{"feeding", leadlinev1.PositionService_Feed_FullMethodName, `{}`, 501, "NOT_OFFERED", ""},
