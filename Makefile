@@ -28,9 +28,10 @@ test:
 	$(GO) run ./tools/testreport
 
 # race runs the concurrent packages under the race detector, which needs a C
-# compiler.
+# compiler. -short leaves out what filters for long and what runs the program,
+# which is built without the detector.
 race:
-	CGO_ENABLED=1 $(GO) test -race $(foreach p,$(RACE_PACKAGES),$(if $(wildcard $(p:/...=)/),$(p)))
+	CGO_ENABLED=1 $(GO) test -race -short $(foreach p,$(RACE_PACKAGES),$(if $(wildcard $(p:/...=)/),$(p)))
 
 # fuzz fuzzes every target live; they share FUZZ_TIME.
 fuzz:

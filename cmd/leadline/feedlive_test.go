@@ -33,6 +33,7 @@ type feeding struct {
 // feedFrom starts one and waits until it feeds.
 func feedFrom(t *testing.T, args ...string) *feeding {
 	t.Helper()
+	runsProgram(t)
 	f := &feeding{
 		cmd: command(context.Background(), append([]string{"feed"}, args...)...),
 		out: &bytes.Buffer{}, errs: &lockedBuffer{}, done: make(chan struct{}),

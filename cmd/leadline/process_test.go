@@ -54,9 +54,19 @@ func command(ctx context.Context, args ...string) *exec.Cmd {
 	return exec.CommandContext(ctx, binary(), args...)
 }
 
+// runsProgram skips a test under -short: what it runs is built without the
+// race detector, for which -short is there.
+func runsProgram(t *testing.T) {
+	t.Helper()
+	if testing.Short() {
+		t.Skip("runs the program: not with -short")
+	}
+}
+
 // leadline runs a command to its end.
 func leadline(t *testing.T, args ...string) (stdout, stderr string, status int) {
 	t.Helper()
+	runsProgram(t)
 	binary() // building it takes its own time
 	ctx, cancel := context.WithTimeout(t.Context(), patience)
 	defer cancel()
@@ -129,6 +139,7 @@ func (b *lockedBuffer) String() string {
 // serveMaps starts a server on a free port and waits until it listens.
 func serveMaps(t *testing.T, args ...string) *running {
 	t.Helper()
+	runsProgram(t)
 	r := &running{log: &lockedBuffer{}}
 	r.cmd = command(context.Background(), append([]string{"serve", "--listen", "127.0.0.1:0"}, args...)...)
 	r.cmd.Stderr = r.log

@@ -319,6 +319,9 @@ func tryFed(t *testing.T, conn *grpc.ClientConn, m *leadlinev1.FeedRequest, name
 // field, what is refused names a field at all, and no session fails. A vehicle
 // beside them drives on as if nothing were.
 func TestFields(t *testing.T) {
+	if testing.Short() {
+		t.Skip("starts nothing beside what TestReasons does: not with -short")
+	}
 	const name, cells = "x", 1000 // x is every name in the requests; few cells cost little
 	lon, lat := 5.1, 53.1
 	suite := &sensor.Suite{Beacons: []sensor.Place{{ID: name, LonDeg: &lon, LatDeg: &lat}}, Posts: []sensor.Post{{ID: name, LonDeg: &lon, LatDeg: &lat}}}

@@ -82,6 +82,9 @@ func TestWhereMany(t *testing.T) {
 // with all that is asked of it, and that the drive goes on as if nobody had
 // asked.
 func TestWhereNow(t *testing.T) {
+	if testing.Short() {
+		t.Skip("filters for long: not with -short")
+	}
 	var clock atomic.Int64
 	_, conn := serve(t, Config{Now: func() time.Time { return time.Unix(0, clock.Load()) }})
 	at := func(s float64) { clock.Store(int64(began) + int64(s*1e9)) }
@@ -162,6 +165,9 @@ func TestWhereNow(t *testing.T) {
 // TestWhereWhileFeeding asks about many vehicles, now and as of their last
 // measurements, while all of them are fed: nobody's posteriors change.
 func TestWhereWhileFeeding(t *testing.T) {
+	if testing.Short() {
+		t.Skip("filters for long: not with -short")
+	}
 	_, conn := serve(t, Config{Now: func() time.Time { return time.Unix(0, int64(began+12e9)) }})
 	ctx, stop := context.WithCancel(limited(t))
 	var names []string
