@@ -17,6 +17,8 @@ type voice struct {
 	sensor, kind string
 	course       bool // speeds with a course
 	pressure     bool // barometers that give a pressure
+	// sigmaM is the least sigma that heights state, 0 if none does.
+	sigmaM float64
 }
 
 // voices lists who speaks, by name and kind.
@@ -35,9 +37,20 @@ func voices(events []sensor.Event) []voice {
 			out[i].course = out[i].course || m.HasCourse
 		case sensor.Barometer:
 			out[i].pressure = out[i].pressure || m.HasPressure
+			out[i].states(m.SigmaM)
+		case sensor.Clearance:
+			out[i].states(m.SigmaM)
+		case sensor.Sounding:
+			out[i].states(m.SigmaM)
 		}
 	}
 	return out
+}
+
+func (v *voice) states(sigmaM float64) {
+	if sigmaM > 0 && (v.sigmaM == 0 || sigmaM < v.sigmaM) {
+		v.sigmaM = sigmaM
+	}
 }
 
 // is reports whether a sensor and kind are those of the voice.

@@ -42,7 +42,8 @@ func (e *entrant) last() float64 { return e.nats[len(e.nats)-1] }
 //
 // farNats is the same for the log as it stands, which the others are compared
 // with, and for the best of a family that is searched for a value, which its
-// finer values go on from.
+// finer values go on from. What stands for its neighbours is allowed what that
+// may have cost it.
 const (
 	behindNats = 60.0
 	farNats    = 300.0
@@ -127,6 +128,12 @@ func keep(es []*entrant) []*entrant {
 		behind := behindNats
 		if e.isLog() || of[e.mistake.family] == e {
 			behind = farNats
+		}
+		if s := e.mistake.search; s != nil && s.broadens() {
+			if e.last() < of[s.family].last()-behindNats {
+				continue
+			}
+			behind += s.lossNats * e.run.log.weight(s.sensor)
 		}
 		if e.last() >= best.last()-behind {
 			out = append(out, e)

@@ -128,6 +128,17 @@ func (r *Record) nats() float64 {
 	return sum
 }
 
+// weight is how many independent measurements of a sensor there were.
+func (r *Record) weight(sensor string) float64 {
+	sum := 0.0
+	for _, w := range r.list {
+		if r.voices[w.voice].sensor == sensor {
+			sum += w.power
+		}
+	}
+	return sum
+}
+
 // outlier is the probability that a measurement is an outlier, given its log
 // evidence: flat/evidence, since the evidence is that of the whole mixture; or,
 // if its sensor states none, of the mixture with them.

@@ -1,12 +1,14 @@
 package diagnose
 
 import (
+	"cmp"
 	"fmt"
 	"math"
 	"slices"
 	"strings"
 
 	"leadline/engine/geo"
+	"leadline/engine/kernel"
 	"leadline/engine/sensor"
 )
 
@@ -20,8 +22,11 @@ type scan struct {
 	least float64
 	// make makes the mistake of a value that stands for all within ±half.
 	make func(value, half float64) Mistake
-	// broadens says that half matters.
-	broadens bool
+	// lossNats is what standing for its neighbours costs a coarse value for each
+	// measurement of the sensor at most, 0 where half does not matter. Where it
+	// does, none is among the coarse values, which then compare with each other.
+	lossNats float64
+	sensor   string
 	// north is set for directions; see grids.
 	north bool
 }
@@ -32,6 +37,9 @@ func (s *scan) values() int { return int(2 * s.reach / s.fine) }
 // coarse are the values that are tried first.
 func (s *scan) coarse() []Mistake {
 	var out []Mistake
+	if s.broadens() {
+		out = append(out, s.named(0, s.step/2))
+	}
 	for n := 1; float64(n)*s.step <= s.reach; n++ {
 		for _, v := range []float64{float64(n) * s.step, -float64(n) * s.step} {
 			out = append(out, s.named(v, s.step/2))
@@ -39,6 +47,8 @@ func (s *scan) coarse() []Mistake {
 	}
 	return out
 }
+
+func (s *scan) broadens() bool { return s.lossNats > 0 }
 
 func (s *scan) named(value, half float64) Mistake {
 	m := s.make(value, half)
@@ -61,10 +71,12 @@ func scans(vs []voice, suite *sensor.Suite) []scan {
 	kinds := map[string]bool{}
 	for _, v := range vs {
 		if v.heights() {
-			sigmaM := suite.Sensor(v.sensor, v.kind).Noise.SigmaM
+			noiseM := suite.Sensor(v.sensor, v.kind).Noise.SigmaM
+			sigmaM := cmp.Or(v.sigmaM, noiseM, datumStepM)
 			out = append(out, scan{
-				family: "datum " + v.sensor, step: datumStepM, reach: datumReachM, fine: datumFineM, least: datumLeastM, broadens: true,
-				make: func(value, half float64) Mistake { return v.offset(value, half, sigmaM) },
+				family: "datum " + v.sensor, step: datumStepM, reach: datumReachM, fine: datumFineM, least: datumLeastM,
+				make:     func(value, half float64) Mistake { return v.offset(value, half, noiseM) },
+				lossNats: 0.5 * kernel.Log(1+datumStepM*datumStepM/4/(sigmaM*sigmaM)), sensor: v.sensor,
 			})
 		}
 		if v.directed() {
@@ -100,7 +112,7 @@ func (c *course) refine(s *scan, coarse *entrant) *entrant {
 		}
 		value := best.mistake.Value
 		ms := []Mistake{s.named(value-half, broad), s.named(value+half, broad)}
-		if s.broadens { // what was best stood for more
+		if s.broadens() { // what was best stood for more
 			ms, best = append(ms, s.named(value, broad)), nil
 		}
 		for _, e := range c.race(ms) {

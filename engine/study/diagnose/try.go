@@ -34,7 +34,10 @@ func (c *course) tryAll(r *Report, o Options) error {
 			continue
 		}
 		// A value beyond half a step from none has a coarse one that is nearer.
-		if c.finished(e) && c.better(e, base) {
+		if s.broadens() && e.mistake.Value == 0 {
+			continue
+		}
+		if c.finished(e) && (s.broadens() || c.better(e, base)) {
 			if fine := c.refine(s, e); fine != nil {
 				e = fine
 			}
