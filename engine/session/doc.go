@@ -15,5 +15,10 @@
 // for each stretch between two beginnings or ends, and a stretch that nobody
 // measures is a gap, however other measurements cut it.
 //
+// A sensor that leads all others by more than a minute is held back until another
+// one comes as far, or it is alone; see lead.go. What roads cannot be followed
+// over, in a long silence, is put on them anew and counted as restarted; see
+// spread.go.
+//
 // A session is pure: no clock, no I/O, no goroutine. One goroutine owns it.
 package session
