@@ -231,10 +231,10 @@ func TestRefusedMotions(t *testing.T) {
 			s.drive.Events[i].Measurement = m
 		}
 	}
-	if most < 10*0.1+100 {
+	if most < 10*0.1+100 { // session refuses from there on
 		t.Fatalf("at most %v m in a second are not refused", most)
 	}
-	r, err := Run(s.drive, s.config, Options{MaxCells: 1000, Each: accept.Each})
+	r, err := Run(s.drive, s.config, Options{MaxCells: 500, Each: accept.Each})
 	must(t, r, err)
 	for _, k := range r.Candidates {
 		if mends := k.Mistake == "distances ten times too large"; k.Named != mends || (k.GivenUpAfter == nil) != mends {

@@ -254,7 +254,7 @@ func TestDensityOfTheLog(t *testing.T) {
 		ms := catalogue(c.voices)
 		m := ms[slices.IndexFunc(ms, func(m Mistake) bool { return m.Name == k.name })]
 		sum := 0.0
-		const stepM = 1.0
+		const stepM = 2.0
 		for o := -80.0; o <= 80; o += stepM { // the ground within 50 m is known to less than 10 m
 			ev := true0
 			ev.ClearanceM = k.scale * (true0.ClearanceM + o)
