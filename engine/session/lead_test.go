@@ -35,8 +35,8 @@ func addAll(t *testing.T, s *Session, events ...sensor.Event) (refused int) {
 // first event on or from some time on: it is refused, with what to do, what it
 // sent before that became clear counts as refused, and all else is as without it.
 func TestClockAhead(t *testing.T) {
-	for _, first := range []int{0, 1, 40} {
-		for _, aheadS := range []float64{61.5, 3 * 3600, 23 * 3600} {
+	for _, first := range []int{0, 40} {
+		for _, aheadS := range []float64{61.5, 23 * 3600} {
 			t.Run(fmt.Sprintf("first=%d/ahead=%g", first, aheadS), func(t *testing.T) {
 				with, without := afloat(t), afloat(t)
 				bad, said := 0, ""
