@@ -36,6 +36,13 @@ var binary = sync.OnceValue(func() string {
 var buildDir string
 
 func TestMain(m *testing.M) {
+	// What a test runs takes its settings from variables of this prefix: those
+	// that steer the tests themselves, and a developer's own, are not among them.
+	for _, kv := range os.Environ() {
+		if name, _, _ := strings.Cut(kv, "="); strings.HasPrefix(name, variablePrefix) {
+			_ = os.Unsetenv(name)
+		}
+	}
 	var err error
 	if buildDir, err = os.MkdirTemp("", "leadline-test-"); err != nil {
 		fmt.Fprintln(os.Stderr, err)
