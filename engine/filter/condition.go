@@ -85,30 +85,8 @@ func (w *noiseWork) condition(g *gaussian, k int, angular uint, t *Terms, i int)
 	rows := t.Row[i*m*k : (i+1)*m*k]
 	var r [2]float64
 	copy(r[:], t.Residual[i*m:(i+1)*m])
-	// gain = C rowᵀ (k×m), predicted variance of g(x) = row C rowᵀ.
 	var gain [2][MaxK]float64
-	var p sym2
-	for a := range m {
-		row := rows[a*k : a*k+k]
-		for x := range k {
-			s := 0.0
-			for y, v := range row {
-				if v != 0 {
-					s += float64(v * g.at(x, y))
-				}
-			}
-			gain[a][x] = s
-		}
-	}
-	for x, v := range rows[:k] {
-		p.a += float64(v * gain[0][x])
-	}
-	if m == 2 {
-		for x, v := range rows[k : 2*k] {
-			p.b += float64(v * gain[0][x])
-			p.c += float64(v * gain[1][x])
-		}
-	}
+	p := g.ofRows(&gain, k, m, rows)
 	if len(w.parts) == 1 && math.IsInf(w.logFlat, -1) {
 		log, inv := w.part(0, p, r, t.Extra[i])
 		g.gainBy(k, m, &gain, r, inv)
@@ -173,6 +151,33 @@ func (w *noiseWork) condition(g *gaussian, k int, angular uint, t *Terms, i int)
 		g.gainBy(k, m, &gain, r, s.inverse(m))
 	}
 	return float64(w.power * (most + kernel.Log(sum)))
+}
+
+// ofRows returns the variance of what rows (m×k) take of g, row C rowᵀ, and
+// writes C rowᵀ (k×m) into gain.
+func (g *gaussian) ofRows(gain *[2][MaxK]float64, k, m int, rows []float64) (p sym2) {
+	for a := range m {
+		row := rows[a*k : a*k+k]
+		for x := range k {
+			s := 0.0
+			for y, v := range row {
+				if v != 0 {
+					s += float64(v * g.at(x, y))
+				}
+			}
+			gain[a][x] = s
+		}
+	}
+	for x, v := range rows[:k] {
+		p.a += float64(v * gain[0][x])
+	}
+	if m == 2 {
+		for x, v := range rows[k : 2*k] {
+			p.b += float64(v * gain[0][x])
+			p.c += float64(v * gain[1][x])
+		}
+	}
+	return p
 }
 
 // noise is the covariance of part c at a position.

@@ -26,6 +26,9 @@ type Workspace struct {
 	terms         Terms
 	logs, scratch []float64
 	tiles         tileSpace
+
+	foretell    *Predictive
+	predictions predictions
 }
 
 // Trace is what one Predict did: mass Weight·(mass of Source) went into

@@ -48,6 +48,9 @@ func (b *Belief) condition(space Space, l any, w *Workspace) {
 		noise := l.Noise()
 		nw := newNoiseWork(&noise, m)
 		angular := angularMask(b.Quantities)
+		if p := w.asked(); p != nil {
+			b.foretell(p, l, &noise, w)
+		}
 		w.out.reset()
 		var g gaussian
 		for i := range n {
@@ -56,6 +59,7 @@ func (b *Belief) condition(space Space, l any, w *Workspace) {
 			w.out.push(b.Key[i], k, &g)
 		}
 	case Likelihood:
+		w.asked()
 		w.locate(b, space, l.Wants())
 		l.LogLikelihood(w.logs, &w.at)
 	default:

@@ -20,12 +20,13 @@ func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 	h := b.Lattice.SpacingM
 	within := h * h / 12
 	var nw noiseWork
+	var noise Noise
 	lin, linear := l.(LinearLikelihood)
 	like, plain := l.(Likelihood)
 	wants := WantPosition
 	switch {
 	case linear:
-		noise := lin.Noise()
+		noise = lin.Noise()
 		nw = newNoiseWork(&noise, lin.Rows())
 		wants |= lin.Wants()
 	case plain:
@@ -33,6 +34,9 @@ func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 	default:
 		panic("filter: not a likelihood")
 	}
+	p := w.asked()
+	turned, _ := l.(Turned)
+	w.predictions.reset()
 	for i := range t.At {
 		logs := w.logs[i*tileCells : (i+1)*tileCells]
 		w.at.Resize(wants, 2, tileCells)
@@ -50,7 +54,14 @@ func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 				continue
 			}
 			logs[x] = nw.density(&w.terms, x, within)
+			if p != nil {
+				w.predictions.add(mass, &w.terms, x, m, w.terms.withinCell(x, m, within), &w.at, turned)
+			}
 		}
+	}
+	if p != nil && linear {
+		_, circular := l.(Circular)
+		w.predictions.into(p, &noise, lin.Rows(), circular)
 	}
 }
 
@@ -93,6 +104,18 @@ func (l Lattice) points(at *Columns, t TileAt) {
 	}
 }
 
+// withinCell is the variance of what the rows take of a position at i that has
+// the variance within along each axis.
+func (t *Terms) withinCell(i, m int, within float64) sym2 {
+	row := t.Row[i*m*2 : (i+1)*m*2]
+	p := sym2{a: float64(within * (float64(row[0]*row[0]) + float64(row[1]*row[1])))}
+	if m == 2 {
+		p.b = float64(within * (float64(row[0]*row[2]) + float64(row[1]*row[3])))
+		p.c = float64(within * (float64(row[2]*row[2]) + float64(row[3]*row[3])))
+	}
+	return p
+}
+
 // density returns the log likelihood at a lattice cell whose position has the
 // variance within along each axis.
 func (w *noiseWork) density(t *Terms, i int, within float64) float64 {
@@ -100,14 +123,9 @@ func (w *noiseWork) density(t *Terms, i int, within float64) float64 {
 		return float64(w.power * flat)
 	}
 	m := w.m
-	row := t.Row[i*m*2 : (i+1)*m*2]
 	var r [2]float64
 	copy(r[:], t.Residual[i*m:(i+1)*m])
-	p := sym2{a: float64(within * (float64(row[0]*row[0]) + float64(row[1]*row[1])))}
-	if m == 2 {
-		p.b = float64(within * (float64(row[0]*row[2]) + float64(row[1]*row[3])))
-		p.c = float64(within * (float64(row[2]*row[2]) + float64(row[3]*row[3])))
-	}
+	p := t.withinCell(i, m, within)
 	if len(w.parts) == 1 && math.IsInf(w.logFlat, -1) {
 		log, _ := w.part(0, p, r, t.Extra[i])
 		return float64(w.power*w.logW[0]) + log

@@ -56,6 +56,9 @@ func (l *alignment) Wants() filter.Wants { return filter.WantPosition | filter.W
 func (l *alignment) Rows() int           { return 1 }
 func (l *alignment) Noise() filter.Noise { return l.noise }
 
+// Circular implements filter.Circular.
+func (l *alignment) Circular() {}
+
 // Linearize implements filter.LinearLikelihood.
 func (l *alignment) Linearize(t *filter.Terms, at *filter.Columns, qs []filter.Quantity, mean []float64) {
 	k := stride(at, qs)

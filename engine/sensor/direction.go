@@ -130,6 +130,9 @@ func (l *sight) Wants() filter.Wants       { return filter.WantPosition }
 func (l *linearSight) Rows() int           { return 1 }
 func (l *linearSight) Noise() filter.Noise { return l.noise }
 
+// Circular implements filter.Circular.
+func (l *linearSight) Circular() {}
+
 // Linearize implements filter.LinearLikelihood.
 func (l *linearSight) Linearize(t *filter.Terms, at *filter.Columns, qs []filter.Quantity, mean []float64) {
 	k := stride(at, qs)

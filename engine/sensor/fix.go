@@ -55,11 +55,23 @@ type fixing struct {
 	noise filter.Noise
 }
 
-var _ filter.LinearLikelihood = (*fixing)(nil)
+var (
+	_ filter.LinearLikelihood = (*fixing)(nil)
+	_ filter.Turned           = (*fixing)(nil)
+)
 
 func (l *fixing) Wants() filter.Wants { return filter.WantPosition }
 func (l *fixing) Rows() int           { return 2 }
 func (l *fixing) Noise() filter.Noise { return l.noise }
+
+// Axes implements filter.Turned: on roads the rows are along and across.
+func (l *fixing) Axes(at *filter.Columns, i int) (first, second geo.Point) {
+	if at.Dim == 2 {
+		return geo.Point{E: 1}, geo.Point{N: 1}
+	}
+	tE, tN := at.TangentE[i], at.TangentN[i]
+	return geo.Point{E: tE, N: tN}, geo.Point{E: tN, N: -tE}
+}
 
 // Linearize implements filter.LinearLikelihood.
 func (l *fixing) Linearize(t *filter.Terms, at *filter.Columns, qs []filter.Quantity, mean []float64) {

@@ -64,6 +64,9 @@ func (l *compass) Wants() filter.Wants {
 func (l *compass) Rows() int           { return 1 }
 func (l *compass) Noise() filter.Noise { return l.noise }
 
+// Circular implements filter.Circular.
+func (l *compass) Circular() {}
+
 // Linearize implements filter.LinearLikelihood.
 func (l *compass) Linearize(t *filter.Terms, at *filter.Columns, qs []filter.Quantity, mean []float64) {
 	k := stride(at, qs)
