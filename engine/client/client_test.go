@@ -27,9 +27,15 @@ type script struct {
 
 func (s script) Feed(st serverStream) error { return s.feed(st) }
 
-// against serves a script until the test ends, and proves then that no
-// goroutine is left.
+// against serves a script until the test ends, see serveUntilEnd.
 func against(t *testing.T, feed func(serverStream) error) *grpc.ClientConn {
+	t.Helper()
+	return serveUntilEnd(t, script{feed: feed})
+}
+
+// serveUntilEnd serves calls until the test ends, and proves then that no
+// goroutine is left.
+func serveUntilEnd(t *testing.T, calls leadlinev1.PositionServiceServer) *grpc.ClientConn {
 	t.Helper()
 	before := goleak.IgnoreCurrent()
 	l, err := net.Listen("tcp", "127.0.0.1:0")
@@ -37,7 +43,7 @@ func against(t *testing.T, feed func(serverStream) error) *grpc.ClientConn {
 		t.Fatal(err)
 	}
 	s := grpc.NewServer()
-	leadlinev1.RegisterPositionServiceServer(s, script{feed: feed})
+	leadlinev1.RegisterPositionServiceServer(s, calls)
 	served := make(chan error, 1)
 	go func() { served <- s.Serve(l) }()
 	conn, err := Dial(l.Addr().String())

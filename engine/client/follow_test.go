@@ -13,7 +13,6 @@ import (
 	"strings"
 	"testing"
 
-	"go.uber.org/goleak"
 	"google.golang.org/genproto/googleapis/rpc/errdetails"
 	"google.golang.org/grpc"
 	"google.golang.org/grpc/codes"
@@ -38,32 +37,6 @@ func (o other) UploadMap(st grpc.ClientStreamingServer[leadlinev1.UploadMapReque
 	return o.upload(st)
 }
 
-func serveOther(t *testing.T, o other) *grpc.ClientConn {
-	t.Helper()
-	before := goleak.IgnoreCurrent()
-	l, err := net.Listen("tcp", "127.0.0.1:0")
-	if err != nil {
-		t.Fatal(err)
-	}
-	s := grpc.NewServer()
-	leadlinev1.RegisterPositionServiceServer(s, o)
-	served := make(chan error, 1)
-	go func() { served <- s.Serve(l) }()
-	conn, err := Dial(l.Addr().String())
-	if err != nil {
-		t.Fatal(err)
-	}
-	t.Cleanup(func() {
-		conn.Close()
-		s.Stop()
-		if err := <-served; err != nil {
-			t.Error(err)
-		}
-		goleak.VerifyNone(t, before)
-	})
-	return conn
-}
-
 func badToken() error {
 	st, _ := status.New(codes.InvalidArgument, "no such token").WithDetails(&errdetails.ErrorInfo{Domain: "leadline.v1", Reason: "BAD_TOKEN"})
 	return st.Err()
@@ -74,7 +47,7 @@ func badToken() error {
 // what ends it for good comes back.
 func TestFollow(t *testing.T) {
 	var tokens []string
-	conn := serveOther(t, other{follow: func(r *leadlinev1.FollowRequest, st grpc.ServerStreamingServer[leadlinev1.FollowResponse]) error {
+	conn := serveUntilEnd(t, other{follow: func(r *leadlinev1.FollowRequest, st grpc.ServerStreamingServer[leadlinev1.FollowResponse]) error {
 		tokens = append(tokens, r.GetResumeToken())
 		send := func(from, to int) {
 			for i := from; i < to; i++ {
@@ -157,7 +130,7 @@ func TestFollowNobody(t *testing.T) {
 func TestSendMap(t *testing.T) {
 	for _, size := range []int{1, mapChunk, 3*mapChunk + 17} {
 		content := bytes.Repeat([]byte("0123456789abcdef"), size/16+1)[:size]
-		conn := serveOther(t, other{upload: func(st grpc.ClientStreamingServer[leadlinev1.UploadMapRequest, leadlinev1.UploadMapResponse]) error {
+		conn := serveUntilEnd(t, other{upload: func(st grpc.ClientStreamingServer[leadlinev1.UploadMapRequest, leadlinev1.UploadMapResponse]) error {
 			m, err := st.Recv()
 			if err != nil {
 				return err
@@ -191,7 +164,7 @@ func TestSendMap(t *testing.T) {
 			t.Errorf("%d bytes: %v, %v, %d sent", size, m, err, last)
 		}
 	}
-	conn := serveOther(t, other{upload: func(st grpc.ClientStreamingServer[leadlinev1.UploadMapRequest, leadlinev1.UploadMapResponse]) error {
+	conn := serveUntilEnd(t, other{upload: func(st grpc.ClientStreamingServer[leadlinev1.UploadMapRequest, leadlinev1.UploadMapResponse]) error {
 		_, _ = st.Recv()
 		return status.Error(codes.AlreadyExists, "there is one")
 	}})

@@ -173,28 +173,6 @@ func TestSharpMeasurementOfGaussians(t *testing.T) {
 	}
 }
 
-// TestSharpArcOfGaussians: a range of 2 m sigma to a beacon in a prior of 100 m
-// leaves an arc, as on a lattice (TestSharpArc).
-func TestSharpArcOfGaussians(t *testing.T) {
-	p := plane.Open(geo.LonLat{}, 20000, 100)
-	b, err := filter.Seed(p, filter.AtPoint{SigmaM: 100}, planeWithScale, 1<<18)
-	if err != nil {
-		t.Fatal(err)
-	}
-	var w filter.Workspace
-	beacon := geo.Point{E: -150, N: 30}
-	const z, sigma = 180, 2
-	e, err := filter.UpdateWithin(b, p, rangeTo{beacon, z, sigma}, 1<<20, &w)
-	if err != nil {
-		t.Fatal(err)
-	}
-	_, m, v := b.Moments(p, &w)
-	logE, mean, cov := arc(beacon, z, sigma, 100)
-	if math.Abs(m.E-mean.E) > 0.02*math.Sqrt(cov[0]) || math.Abs(m.N-mean.N) > 0.02*math.Sqrt(cov[2]) || math.Abs(v[0]/cov[0]-1) > 0.02 || math.Abs(v[2]/cov[2]-1) > 0.02 || math.Abs(e-logE) > 0.03 {
-		t.Errorf("mean %v, covariance %v, log evidence %v; polar integration %v, %v, %v (spacing %g, %d Gaussians)", m, v, e, mean, cov, logE, b.Lattice.SpacingM, b.Cells())
-	}
-}
-
 // TestContradictionAfterRefining: a measurement that turns out impossible only
 // when the belief has been refined for it changes no bit.
 func TestContradictionAfterRefining(t *testing.T) {

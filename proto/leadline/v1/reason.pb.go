@@ -65,7 +65,8 @@ const (
 	Reason_REASON_OUT_OF_ORDER Reason = 28
 	// A batch came after the drive's end. FAILED_PRECONDITION.
 	Reason_REASON_DRIVE_ENDED Reason = 29
-	// The vehicle has no posterior yet. FAILED_PRECONDITION.
+	// The vehicle has no posterior yet, or none that can be carried on to the
+	// present. FAILED_PRECONDITION.
 	Reason_REASON_NO_POSTERIOR Reason = 30
 	// A limit of the server is reached. RESOURCE_EXHAUSTED.
 	Reason_REASON_SERVER_FULL Reason = 31

@@ -166,7 +166,8 @@ export enum Reason {
   DRIVE_ENDED = 29,
 
   /**
-   * The vehicle has no posterior yet. FAILED_PRECONDITION.
+   * The vehicle has no posterior yet, or none that can be carried on to the
+   * present. FAILED_PRECONDITION.
    *
    * @generated from enum value: REASON_NO_POSTERIOR = 30;
    */
