@@ -74,7 +74,7 @@ func printPosterior(w io.Writer, p *leadlinev1.Posterior) {
 		line("speed", "%.1f m/s", s.GetMps())
 	}
 	for _, n := range p.GetNuisances() {
-		line("estimated", "%s %.5g ± %.2g", n.GetName(), n.GetMean(), n.GetSigma())
+		line("estimated", "%s", strings.TrimSpace(fmt.Sprintf("%s %.5g ± %.2g %s", n.GetName(), n.GetMean(), n.GetSigma(), n.GetUnit())))
 	}
 	n := p.GetCounts()
 	line("measurements", "%d accepted, %d refused; log evidence %.1f", n.GetAccepted(), n.GetRefused(), p.GetLogEvidence())

@@ -177,7 +177,7 @@ func TestReadmeNames(t *testing.T) {
 	wantWords(t, page, "field of a posterior", fieldNames((&leadlinev1.Posterior{}).ProtoReflect().Descriptor(), seen))
 	wantWords(t, page, "kind of measurement", sensor.Kinds())
 	wantWords(t, page, "key of a suite", keys(reflect.TypeFor[sensor.Suite](), "yaml"))
-	wantWords(t, page, "nuisance", []string{sensor.NuisanceHeading, sensor.NuisanceOdometerScale})
+	wantWords(t, page, "nuisance", sensor.NuisanceNames())
 	wantWords(t, page, "starter suite", sensor.StarterNames())
 	for _, s := range []summary.Status{summary.Contradicted, summary.OffMap, summary.Located, summary.Ambiguous, summary.Unsure} {
 		if !strings.Contains(page, "`"+s.String()+"`:") {

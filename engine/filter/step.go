@@ -13,13 +13,24 @@ type Quantity struct {
 	DriftVar float64
 }
 
-// Names of quantities, with units.
+// Names of quantities, with units. An error is what was measured, less what is
+// true.
 const (
-	Along         = "along_m"        // position within the cell on a line
-	East          = "east_m"         // position within the cell on a plane
-	North         = "north_m"        //
-	Heading       = "heading_rad"    // vehicle heading, clockwise from frame north
-	OdometerScale = "odometer_scale" // true distance / measured distance - 1
+	Along           = "along_m"            // position within the cell on a line
+	East            = "east_m"             // position within the cell on a plane
+	North           = "north_m"            //
+	Heading         = "heading_rad"        // vehicle heading, clockwise from frame north
+	OdometerScale   = "odometer_scale"     // true distance / measured distance - 1
+	GyroBias        = "gyro_bias_rad_s"    // error of a turn, a second
+	AltimeterOffset = "altimeter_offset_m" // error of (altitude - clearance)
+	BarometerOffset = "barometer_offset_m" // error of an altitude on a road
+	Tide            = "tide_m"             // the water's surface above the map's datum
+	SoundSpeedScale = "sound_speed_scale"  // true depth below transducer / measured depth - 1
+	// Errors of a displacement: of its velocity in true east and north, and the
+	// angle by which the true one is turned clockwise from the measured one.
+	VelocityErrorEast  = "velocity_error_east_mps"
+	VelocityErrorNorth = "velocity_error_north_mps"
+	AzimuthError       = "azimuth_error_rad"
 )
 
 // Index returns the index of the named quantity, or -1.

@@ -3,6 +3,7 @@ package sensor
 import (
 	"math"
 
+	"leadline/engine/filter"
 	"leadline/engine/kernel"
 )
 
@@ -75,14 +76,19 @@ func StandardHeightM(pressureHPa, seaLevelHPa float64) float64 {
 	return isaTropopause - isaR*t/isaG*(ratio-atTropopause)
 }
 
-// likelihood: altitude + down = height of the road + v, with down the
+// likelihood: altitude + down = height of the road + offset + v, with down the
 // sensor's mounting below the reference point on the road's surface (negative
-// in a vehicle). A pressure is turned into an altitude by the standard
+// in a vehicle) and the barometer_offset_m of a sensor that describes one. A
+// pressure is turned into an altitude by the standard
 // atmosphere over the suite's pressure at sea level.
 func (m Barometer) likelihood(c *Context, d Sensor) any {
 	z := m.AltitudeM
 	if m.HasPressure {
 		z = StandardHeightM(m.PressureHPa, c.Suite.Environment.SeaLevelPressureHPa)
 	}
-	return c.heights(d, z+d.Mounting.DownM, m.SigmaM, 0, d.Mounting.ForwardM, d.Mounting.RightM)
+	l := c.heights(d, z+d.Mounting.DownM, m.SigmaM, 0, d.Mounting.ForwardM, d.Mounting.RightM)
+	if d.has(NuisanceBarometerOffset) {
+		l.with(c, filter.BarometerOffset, 1)
+	}
+	return l
 }

@@ -1,5 +1,7 @@
 package sensor
 
+import "leadline/engine/filter"
+
 // Clearance is height above ground together with the vehicle's own altitude:
 // the ground's height is their difference, and SigmaM the standard deviation
 // of that difference.
@@ -17,10 +19,15 @@ func (m Clearance) Check(Time) error {
 	return p.err()
 }
 
-// likelihood: altitude - clearance - down = height of the ground + v, with
-// down the sensor's mounting below the reference point that the altitude is
-// of (type heights).
+// likelihood: altitude - clearance - down = height of the ground + offset + v,
+// with down the sensor's mounting below the reference point that the altitude
+// is of, and the altimeter_offset_m of a sensor that describes one (type
+// heights).
 func (m Clearance) likelihood(c *Context, d Sensor) any {
 	z := m.AltitudeM - m.ClearanceM - d.Mounting.DownM
-	return c.heights(d, z, m.SigmaM, m.ClearanceM, d.Mounting.ForwardM, d.Mounting.RightM)
+	l := c.heights(d, z, m.SigmaM, m.ClearanceM, d.Mounting.ForwardM, d.Mounting.RightM)
+	if d.has(NuisanceAltimeterOffset) {
+		l.with(c, filter.AltimeterOffset, 1)
+	}
+	return l
 }

@@ -1,6 +1,10 @@
 package sensor
 
-import "math"
+import (
+	"math"
+
+	"leadline/engine/geo"
+)
 
 // best calls use for the sources of a component that cover as much of the
 // segment as the best one does; a standstill that does so silences the rest.
@@ -27,6 +31,7 @@ type body struct {
 	forward, scaled, forwardVar float64 // scaled: the part that the odometer's scale stretches
 	right, rightVar             float64
 	turn, turnVar               float64
+	biasS                       float64 // for how long the gyro's bias is in the turn
 	covered, turnCovered        Time
 }
 
@@ -42,9 +47,12 @@ func (m *Motion) body() body {
 		w := 1 / s.turnVar
 		sum += w
 		b.turn += w * s.turn
+		if s.biased {
+			b.biasS += w * float64(s.covered) / 1e9
+		}
 	})
 	if sum > 0 {
-		b.turn, b.turnVar = b.turn/sum, 1/sum
+		b.turn, b.turnVar, b.biasS = b.turn/sum, 1/sum, b.biasS/sum
 	}
 	sum = 0
 	rightSum := 0.0
@@ -84,12 +92,36 @@ type ground struct {
 	east, north float64
 	cov         [3]float64
 	covered     Time
+	// by is what the true displacement, less (east, north), grows by for each
+	// unit of an error: of the velocity east and north, of the azimuth.
+	by [3]geo.Point
+}
+
+// errors of a source, see ground.by: the true displacement is
+//
+//	(I + δ·J)·(east, north) - t·velocity error,  J = (0 1; -1 0),
+//
+// a small turn clockwise by δ. Inertial units integrate in a level frame that
+// does not turn with the vehicle, so the error of the velocity keeps its
+// direction when the vehicle turns, and is in true east and north. What is
+// left of an odometry in the vehicle's own axes is its heading and its scale,
+// which are quantities of their own (BodyDisplacement).
+func (s *source) errors() (by [3]geo.Point) {
+	if s.drifting {
+		t := float64(s.covered) / 1e9
+		by[0].E, by[1].N = -t, -t
+	}
+	if s.turned {
+		by[2] = geo.Point{E: s.north, N: -s.east}
+	}
+	return by
 }
 
 func (m *Motion) ground(turn float64) ground {
 	var g ground
 	var info [3]float64
 	var e, n float64
+	var by [3]geo.Point
 	count := 0
 	g.covered = m.best(hasGround, func(s *source) {
 		// A sensor away from the reference point swings round it by the
@@ -98,7 +130,7 @@ func (m *Motion) ground(turn float64) ground {
 		swing := square(turn) * (square(s.arm.ForwardM) + square(s.arm.RightM)) / 2
 		c := [3]float64{s.cov[0] + swing, s.cov[1], s.cov[2] + swing}
 		if count++; count == 1 {
-			g.east, g.north, g.cov = s.east, s.north, c
+			g.east, g.north, g.cov, g.by = s.east, s.north, c, s.errors()
 		}
 		det := float64(c[0]*c[2]) - float64(c[1]*c[1])
 		inv := [3]float64{c[2] / det, -c[1] / det, c[0] / det}
@@ -107,12 +139,19 @@ func (m *Motion) ground(turn float64) ground {
 		for i := range info {
 			info[i] += inv[i]
 		}
+		for i, v := range s.errors() {
+			by[i].E += float64(inv[0]*v.E) + float64(inv[1]*v.N)
+			by[i].N += float64(inv[1]*v.E) + float64(inv[2]*v.N)
+		}
 	})
 	if count > 1 {
 		det := float64(info[0]*info[2]) - float64(info[1]*info[1])
 		g.cov = [3]float64{info[2] / det, -info[1] / det, info[0] / det}
 		g.east = float64(g.cov[0]*e) + float64(g.cov[1]*n)
 		g.north = float64(g.cov[1]*e) + float64(g.cov[2]*n)
+		for i, v := range by {
+			g.by[i] = geo.Point{E: float64(g.cov[0]*v.E) + float64(g.cov[1]*v.N), N: float64(g.cov[1]*v.E) + float64(g.cov[2]*v.N)}
+		}
 	}
 	return g
 }

@@ -17,6 +17,8 @@ import (
 // one over the suite's plausible heights, and says nothing about the
 // quantities: neither zero nor a made-up height.
 //
+// What else the measurement depends on enters linearly (type offset).
+//
 // An arm whose direction is known looks the height up where the sensor is: on
 // a plane in the map, on roads along the grade. Otherwise its square enters
 // by the slope: s²·|arm|²/2. Roll and pitch are not modelled.
@@ -26,8 +28,23 @@ type heights struct {
 	plane      filter.PlaneSpace
 	footprint4 float64 // ρ²/4
 	flat       float64 // ln density of an unknown height
+	offsets    []offset
 	noise      filter.Noise
 	beside     filter.Columns
+}
+
+// offset is a quantity that is in a measured height: z = height + by·x + v.
+type offset struct {
+	quantity int
+	by       float64
+}
+
+// with adds a quantity to what the height depends on, if the belief has it.
+func (l *heights) with(c *Context, quantity string, by float64) *heights {
+	if i := filter.Index(c.Quantities, quantity); i >= 0 {
+		l.offsets = append(l.offsets, offset{i, by})
+	}
+	return l
 }
 
 func (c *Context) heights(d Sensor, zM, sigmaM, distanceM, forward, right float64) *heights {
@@ -86,6 +103,10 @@ func (l *heights) Linearize(t *filter.Terms, at *filter.Columns, qs []filter.Qua
 		at.Row(row, i, sE, sN)
 		if l.arm.heading >= 0 && at.Dim == 2 {
 			row[l.arm.heading] = float64(sE*dE) + float64(sN*dN)
+		}
+		for _, o := range l.offsets {
+			t.Residual[i] -= float64(o.by * mean[i*k+o.quantity])
+			row[o.quantity] = o.by
 		}
 	}
 }

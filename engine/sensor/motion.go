@@ -46,6 +46,9 @@ type source struct {
 	east, north         float64
 	cov                 [3]float64
 	scaled, still, slip bool
+	// Which errors that are estimated are in it: the gyro's bias in the turn;
+	// of the velocity, and of the azimuth, in the ground displacement.
+	biased, drifting, turned bool
 }
 
 // part says which components of motion a source measures.
@@ -108,6 +111,7 @@ func (m *Motion) Add(ev Event, previous Time) {
 		src.has |= hasTurn
 		src.turn += c.AngleRad
 		src.turnVar += square(c.SigmaRad)
+		src.biased = d.has(NuisanceGyroBias)
 	case Displacement:
 		src.has |= hasGround
 		src.east += c.EastM
@@ -115,6 +119,7 @@ func (m *Motion) Add(ev Event, previous Time) {
 		for i, v := range c.CovM2 {
 			src.cov[i] += v
 		}
+		src.drifting, src.turned = d.has(NuisanceVelocityEast), d.has(NuisanceAzimuth)
 		if d.Kind == KindSpeed { // on roads it serves as a distance
 			s := meas.(Displacement)
 			sign := math.Copysign(1, ev.Measurement.(Speed).MPS)

@@ -3,10 +3,12 @@ package sensor
 import (
 	"sort"
 	"strings"
+
+	"leadline/engine/filter"
 )
 
-// Sounding is a depth: the sea floor's height is minus the sum of depth below
-// transducer and transducer depth (plus tide).
+// Sounding is a depth: the sea floor's height is the tide less the sum of depth
+// below transducer and transducer depth.
 type Sounding struct {
 	DepthBelowTransducerM, TransducerDepthM, SigmaM float64
 	Beams                                           []Beam
@@ -46,11 +48,18 @@ func (m Sounding) Check(Time) error {
 // maxKeptBeams bounds the likelihoods of one sounding.
 const maxKeptBeams = 16
 
-// likelihoods: -(depth + transducer depth + down) = height of the sea floor
-// + v at the transducer and under each beam that is kept (type heights). down
-// is the mounting below the waterline and adds to the transducer depth that
-// the measurement carries: give it in one of the two places. The tide is not
-// estimated yet: sigma has to cover it.
+// likelihoods, at the transducer and under each beam that is kept:
+//
+//	-(depth + transducer depth + down) = height of the sea floor - tide + depth·s + v
+//
+// (type heights), with s the sound_speed_scale, by which the true speed of
+// sound exceeds the one that depths were made with, and the tide_m, the water's
+// surface above the map's datum; where a belief lacks them, sigma has to cover
+// them. down is the mounting below the waterline and adds to the transducer
+// depth that the measurement carries: give it in one of the two places.
+//
+// The scale is that of a vertical way. Rays of slanting beams are refracted, too,
+// which is left out: near the middle of a fan it is of second order.
 //
 // Beams close together see the same error of the map, so they are thinned:
 // from the transducer outwards a beam is kept if it is at least two of the
@@ -61,15 +70,18 @@ const maxKeptBeams = 16
 func (m Sounding) likelihoods(c *Context, d Sensor) []any {
 	down := m.TransducerDepthM + d.Mounting.DownM
 	f0, r0 := d.Mounting.ForwardM, d.Mounting.RightM
-	out := []any{c.heights(d, -(m.DepthBelowTransducerM + down), m.SigmaM, m.DepthBelowTransducerM, f0, r0)}
+	under := func(depthM, sigmaM, distanceM, forward, right float64) any {
+		return c.heights(d, -(depthM+down), sigmaM, distanceM, forward, right).
+			with(c, filter.Tide, -1).with(c, filter.SoundSpeedScale, depthM)
+	}
+	out := []any{under(m.DepthBelowTransducerM, m.SigmaM, m.DepthBelowTransducerM, f0, r0)}
 	a := newArm(c, 1, 0)
 	if len(m.Beams) == 0 || c.Dim != 2 || c.Plane == nil || a.heading < 0 && !a.known {
 		return out
 	}
 	for _, b := range thin(m.Beams, 2*c.Plane.DetailM()) {
-		l := c.heights(d, -(b.DepthBelowTransducerM + down), b.SigmaM,
-			hypot(hypot(b.ForwardM, b.RightM), b.DepthBelowTransducerM), f0+b.ForwardM, r0+b.RightM)
-		out = append(out, l)
+		out = append(out, under(b.DepthBelowTransducerM, b.SigmaM,
+			hypot(hypot(b.ForwardM, b.RightM), b.DepthBelowTransducerM), f0+b.ForwardM, r0+b.RightM))
 	}
 	return out
 }

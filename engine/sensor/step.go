@@ -26,14 +26,19 @@ var NoHeading = math.Inf(1)
 // Step turns the segment's motion into a step for a belief over the
 // quantities qs on roads (dim 1) or on a plane (dim 2, qs may be empty).
 //
+// heading += turn - bias·t + v, where the turn is of the gyro that the bias is
+// of and t for how long it turned (drive).
+//
 // On roads: along += d·(1 + scale) + v; a ground displacement that covers more
 // than the distance does moves each Gaussian by its component along the road,
-// with the larger variance of its ellipse. heading += turn + v.
+// with the larger variance of its ellipse.
 //
-// On a plane: a ground displacement D moves east and north by k·R·D with R the
-// rotation into the frame and k its scale at the mean. A motion in the
-// vehicle's axes moves each Gaussian by k·R(heading + turn/2)·(forward·(1 +
-// scale), right), and needs a heading among the quantities.
+// On a plane: a ground displacement D moves east and north by k·R·((I + δJ)D -
+// t·u) with R the rotation into the frame and k its scale at the mean, and its
+// errors of azimuth δ and velocity u if they are estimated (source.errors). A
+// motion in the
+// vehicle's axes moves each Gaussian by k·R(heading + (turn - bias·t)/2)·
+// (forward·(1 + scale), right), and needs a heading among the quantities.
 //
 // Every quantity gains its drift. Time that nobody covers gains the gap's
 // spread (type Vehicle, gapPrior); a turn that nobody measures, turnVar.
@@ -52,6 +57,9 @@ func (m *Motion) Step(qs []filter.Quantity, dim int, frame geo.Frame, pose Pose)
 		gap := float64(m.To-m.From-b.turnCovered) / 1e9
 		s.Add[heading] = b.turn
 		s.Q[filter.Packed(heading, heading)] += b.turnVar + m.Suite.Vehicle.turnVar(gap)
+		if bias := filter.Index(qs, filter.GyroBias); bias >= 0 && b.biasS > 0 {
+			drive(&s, qs, bias, m.Seconds(), []int{heading}, []float64{-b.biasS})
+		}
 	}
 	var covered Time
 	var err error
@@ -59,7 +67,7 @@ func (m *Motion) Step(qs []filter.Quantity, dim int, frame geo.Frame, pose Pose)
 	if dim == 1 {
 		covered = m.roadStep(&s, b, g, frame, pose, scale)
 	} else {
-		covered, err = m.planeStep(&s, b, g, frame, pose, heading, scale, len(qs))
+		covered, err = m.planeStep(&s, b, g, frame, pose, qs)
 	}
 	if err != nil {
 		return s, err
@@ -128,110 +136,38 @@ func largerVariance(c [3]float64) float64 {
 	return 0.5*(c[0]+c[2]) + hypot(0.5*(c[0]-c[2]), c[1])
 }
 
-func (m *Motion) planeStep(s *filter.Step, b body, g ground, frame geo.Frame, pose Pose, heading, scale, k int) (Time, error) {
+func (m *Motion) planeStep(s *filter.Step, b body, g ground, frame geo.Frame, pose Pose, qs []filter.Quantity) (Time, error) {
 	if g.covered >= b.covered && g.covered > 0 {
 		d, cov := inFrame(g, frame, pose.At, true)
 		s.Add[0], s.Add[1] = d.E, d.N
 		for i, v := range cov {
 			s.Q[i] += v
 		}
+		for i, name := range [3]string{filter.VelocityErrorEast, filter.VelocityErrorNorth, filter.AzimuthError} {
+			if q := filter.Index(qs, name); q >= 0 && g.by[i] != (geo.Point{}) {
+				by, _ := inFrame(ground{east: g.by[i].E, north: g.by[i].N}, frame, pose.At, true)
+				drive(s, qs, q, m.Seconds(), []int{0, 1}, []float64{by.E, by.N})
+			}
+		}
 		return g.covered, nil
 	}
 	if b.covered == 0 {
 		return 0, nil
 	}
+	heading := filter.Index(qs, filter.Heading)
 	if heading < 0 {
 		return 0, fmt.Errorf("sensor: motion in the vehicle's own axes needs a heading on a plane: declare the sensor in the suite, so that heading_rad is estimated, or send displacement or speed with course")
 	}
 	_, _, ks := frame.Rotation(pose.At)
-	local := &bodyMotion{k: k, heading: heading, scale: scale, b: b, frameScale: ks}
+	local := &bodyMotion{
+		k: len(qs), heading: heading, scale: filter.Index(qs, filter.OdometerScale), bias: -1, b: b, frameScale: ks,
+	}
+	if b.biasS > 0 {
+		local.bias = filter.Index(qs, filter.GyroBias)
+	}
 	s.Local = local
 	local.spread(s.Q, pose)
 	return b.covered, nil
-}
-
-// bodyMotion moves each Gaussian by the vehicle's own motion along its own
-// heading.
-type bodyMotion struct {
-	k, heading, scale int
-	b                 body
-	frameScale        float64
-	plus              [2]float64
-}
-
-var _ filter.Local = (*bodyMotion)(nil)
-
-// Wants asks for nothing: the motion depends on the heading alone.
-func (l *bodyMotion) Wants() filter.Wants { return 0 }
-
-// Local implements filter.Local: with ψ = heading + turn/2, forward axis
-// (sin ψ, cos ψ), right axis (cos ψ, -sin ψ),
-//
-//	Δ = k·[(f + s·f_scaled)·forward + r·right],
-//	∂Δ/∂heading = k·[(f + s·f_scaled)·right - r·forward],  ∂Δ/∂s = k·f_scaled·forward.
-//
-// Over a heading of variance v both are shorter by e^{-v/2} on average: the arc
-// that the headings make is taken as the straight line through its middle.
-// Source: characteristic function of the normal distribution.
-func (l *bodyMotion) Local(add, f []float64, at *filter.Columns, mean, cov []float64) {
-	packed := l.k * (l.k + 1) / 2
-	for i := 0; i*l.k < len(mean); i++ {
-		x := mean[i*l.k : i*l.k+l.k]
-		row := f[i*2*l.k : (i+1)*2*l.k]
-		clear(row)
-		row[0], row[l.k+1] = 1, 1
-		s, c := kernel.Sincos(x[l.heading] + 0.5*l.b.turn)
-		short := kernel.Exp(-0.5 * cov[i*packed+filter.Packed(l.heading, l.heading)])
-		s, c = float64(short*s), float64(short*c)
-		fwd, right := l.b.forward, l.b.right
-		if l.scale >= 0 {
-			fwd += float64(x[l.scale] * l.b.scaled)
-			row[l.scale] = l.frameScale * float64(l.b.scaled*s)
-			row[l.k+l.scale] = l.frameScale * float64(l.b.scaled*c)
-		}
-		add[2*i] = l.frameScale * (float64(fwd*s) + float64(right*c))
-		add[2*i+1] = l.frameScale * (float64(fwd*c) - float64(right*s))
-		row[l.heading] = add[2*i+1]
-		row[l.k+l.heading] = -add[2*i]
-		add[2*i] += l.plus[0]
-		add[2*i+1] += l.plus[1]
-		affine(add[2*i:2*i+2], row, x)
-	}
-}
-
-// spread adds the noise of the body motion. A step has one Q for all
-// Gaussians, so the noise, which turns with the heading, is averaged over the
-// pose's heading N(ψ, v):
-//
-//	E[R D Rᵀ] = mean(D)·I + e^{-2v}·(R D Rᵀ - mean(D)·I),
-//
-// and the effect of the turn's noise on the position (through turn/2) is
-// likewise averaged, its cross term with the heading by e^{-v/2}.
-func (l *bodyMotion) spread(q []float64, pose Pose) {
-	v := pose.HeadingVar
-	known := v >= 0 && !math.IsInf(v, 0)
-	e2, e1, psi := 0.0, 0.0, 0.0
-	if known {
-		e2, e1, psi = kernel.Exp(-2*v), kernel.Exp(-0.5*v), pose.HeadingRad+0.5*l.b.turn
-	}
-	s, c := kernel.Sincos(psi)
-	k2 := l.frameScale * l.frameScale
-	// In body axes: noise of forward and right, and the half turn's effect
-	// (-right, forward)·σ_turn/2, which is an outer product.
-	half := 0.25 * l.b.turnVar
-	ff := l.b.forwardVar + half*square(l.b.right)
-	rr := l.b.rightVar + half*square(l.b.forward)
-	fr := -half * l.b.forward * l.b.right
-	mean, diff := 0.5*(ff+rr), 0.5*(ff-rr)
-	// Frame: forward = (s, c), right = (c, -s).
-	ee := float64((s*s-c*c)*diff) + float64(2*s*c*fr)
-	en := float64(2*s*c*diff) + float64((c*c-s*s)*fr)
-	q[filter.Packed(0, 0)] += k2 * (mean + e2*ee)
-	q[filter.Packed(1, 0)] += k2 * e2 * en
-	q[filter.Packed(1, 1)] += k2 * (mean - e2*ee)
-	cross := 0.5 * l.b.turnVar * l.frameScale * e1
-	q[filter.Packed(l.heading, 0)] += cross * (float64(l.b.forward*c) - float64(l.b.right*s))
-	q[filter.Packed(l.heading, 1)] += cross * (-float64(l.b.forward*s) - float64(l.b.right*c))
 }
 
 // alongRoad moves each Gaussian by a displacement's component along its road.

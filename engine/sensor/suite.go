@@ -125,21 +125,6 @@ type SensorNoise struct {
 	DegPerSqrtS    float64 `yaml:"sigma_deg_per_sqrt_s"`
 }
 
-// Nuisance is something estimated along the way: where it starts and how it
-// wanders. Its unit is in its name.
-type Nuisance struct {
-	Name          string  `yaml:"name"`
-	Mean          float64 `yaml:"mean"`
-	Sigma         float64 `yaml:"sigma"`
-	DriftPerSqrtS float64 `yaml:"drift_per_sqrt_s"`
-}
-
-// The nuisances that a suite may name so far.
-const (
-	NuisanceHeading       = "heading_deg"
-	NuisanceOdometerScale = "odometer_scale"
-)
-
 // Place is a known place by its id.
 type Place struct {
 	ID      string   `yaml:"id"`

@@ -87,14 +87,15 @@ func (s *Suite) problems() []Finding {
 		f.id(path+".name", d.Name, seen)
 		f.sensor(path, d)
 		for j, n := range d.Nuisances {
-			where := fmt.Sprintf("%s.nuisances[%d]", path, j)
+			where := nuisancePath(i, j)
 			if by, twice := nuisances[n.Name]; twice {
 				f.add(where+".name", "%s is already described at sensor %q: a vehicle has one", n.Name, by)
 			}
 			nuisances[n.Name] = d.Name
-			f.nuisance(where, n)
+			f.nuisance(where, n, d, s)
 		}
 	}
+	f.tooMany(s)
 	if len(s.Beacons) > maxPlaces || len(s.Posts) > maxPlaces {
 		f.add("beacons", "at most %d beacons and posts each are allowed", maxPlaces)
 		return f
@@ -121,6 +122,10 @@ func (s *Suite) problems() []Finding {
 		}
 	}
 	return f
+}
+
+func nuisancePath(sensor, i int) string {
+	return fmt.Sprintf("sensors[%d].nuisances[%d]", sensor, i)
 }
 
 func (f *findings) sensor(path string, d Sensor) {
@@ -166,27 +171,6 @@ func (f *findings) sensor(path string, d Sensor) {
 	}
 	if len(d.Nuisances) > 16 {
 		f.add(path+".nuisances", "at most 16 are allowed")
-	}
-}
-
-// laterNuisances have a name already, so that the message can say more than
-// that they are unknown.
-var laterNuisances = []string{"gyro_bias_dps", "altimeter_offset_m", "tide_m", "sound_speed_mps", "compass_offset_deg", "clock_offset_s"}
-
-func (f *findings) nuisance(path string, n Nuisance) {
-	switch {
-	case n.Name == NuisanceHeading:
-		f.within(path+".mean", n.Mean, -360, 360)
-		f.within(path+".sigma", n.Sigma, 1e-3, 104) // uniform: 180°/√3
-		f.within(path+".drift_per_sqrt_s", n.DriftPerSqrtS, 0, 90)
-	case n.Name == NuisanceOdometerScale:
-		f.within(path+".mean", n.Mean, -0.5, 0.5)
-		f.within(path+".sigma", n.Sigma, 1e-6, 0.5)
-		f.within(path+".drift_per_sqrt_s", n.DriftPerSqrtS, 0, 0.1)
-	case slices.Contains(laterNuisances, n.Name):
-		f.add(path+".name", "%s is not supported yet: remove it and widen the sensor's noise; supported are %s and %s", n.Name, NuisanceHeading, NuisanceOdometerScale)
-	default:
-		f.add(path+".name", "%q is no nuisance: supported are %s and %s", n.Name, NuisanceHeading, NuisanceOdometerScale)
 	}
 }
 

@@ -75,7 +75,9 @@ func message(p *summary.Posterior, vehicle string, m Map, now time.Time) *leadli
 		out.Speed = &leadlinev1.SpeedEstimate{Mps: p.Speed.MPS, SigmaMps: p.Speed.SigmaMPS}
 	}
 	for _, q := range p.Nuisances {
-		out.Nuisances = append(out.Nuisances, &leadlinev1.Nuisance{Name: q.Name, Mean: q.Mean, Sigma: q.Sigma})
+		n := &leadlinev1.Nuisance{}
+		n.Name, n.Unit, n.Mean, n.Sigma = sensor.InUnits(q.Name, q.Mean, q.Sigma)
+		out.Nuisances = append(out.Nuisances, n)
 	}
 	for _, e := range p.Evidence {
 		out.Evidence = append(out.Evidence, &leadlinev1.Evidence{

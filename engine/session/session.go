@@ -181,6 +181,9 @@ func New(c Config) (*Session, error) {
 		if err := c.Suite.Validate(); err != nil {
 			return nil, err
 		}
+		if err := c.Suite.CheckSpace(s.dim); err != nil {
+			return nil, err
+		}
 		s.suite = c.Suite.For(s.dim)
 	}
 	s.motion.Suite = s.suite

@@ -152,7 +152,9 @@ func beyond(res *replay.Result, c session.Config) []Beyond {
 			}
 			away := (n.Mean - q.PriorMean) / prior
 			if math.Abs(away) > beyondSigmas {
-				out = append(out, Beyond{n.Name, n.Mean, n.Sigma, q.PriorMean, prior, away, suggests(n.Name, n.Mean)})
+				name, _, mean, sigma := sensor.InUnits(n.Name, n.Mean, n.Sigma)
+				_, _, priorMean, prior := sensor.InUnits(n.Name, q.PriorMean, prior)
+				out = append(out, Beyond{name, mean, sigma, priorMean, prior, away, suggests(name, mean)})
 			}
 		}
 	}
@@ -161,7 +163,7 @@ func beyond(res *replay.Result, c session.Config) []Beyond {
 
 // suggests says what a nuisance that left its prior may stand for.
 func suggests(name string, mean float64) string {
-	if name == filter.OdometerScale {
+	if name == sensor.NuisanceOdometerScale {
 		return fmt.Sprintf("distances are to be taken %.4g times: look at the wheel's size, its ticks a metre and the unit, or give the scale a wider prior", 1+mean)
 	}
 	return "something that it is not may have been put down to it: look at what it stands for, or give it a wider prior"

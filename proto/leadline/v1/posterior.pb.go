@@ -976,14 +976,18 @@ func (x *Protection) GetUnboundedReason() string {
 // a sensor's bias.
 type Nuisance struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
-	// Its name, with its unit at the end; a ratio has none (odometer_scale: true
-	// over measured distance, less 1). heading_rad is clockwise from the north
-	// of the map's frame; for true north see Posterior.heading.
+	// Its name, as a suite has it: odometer_scale (true over measured distance,
+	// less 1), gyro_bias_dps, altimeter_offset_m, barometer_offset_m, tide_m,
+	// sound_speed_scale (true over assumed speed, less 1). A bias, an offset or an
+	// error is what was measured less what is true. The heading is not among
+	// them: see Posterior.heading.
 	Name string `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
-	// Mean, in the unit of the name.
+	// Mean, in the unit.
 	Mean float64 `protobuf:"fixed64,2,opt,name=mean,proto3" json:"mean,omitempty"`
-	// Standard deviation, in the unit of the name.
-	Sigma         float64 `protobuf:"fixed64,3,opt,name=sigma,proto3" json:"sigma,omitempty"`
+	// Standard deviation, in the unit.
+	Sigma float64 `protobuf:"fixed64,3,opt,name=sigma,proto3" json:"sigma,omitempty"`
+	// Its unit, such as m or deg/s; empty for a ratio.
+	Unit          string `protobuf:"bytes,4,opt,name=unit,proto3" json:"unit,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -1037,6 +1041,13 @@ func (x *Nuisance) GetSigma() float64 {
 		return x.Sigma
 	}
 	return 0
+}
+
+func (x *Nuisance) GetUnit() string {
+	if x != nil {
+		return x.Unit
+	}
+	return ""
 }
 
 // Evidence is how well one measurement was explained.
@@ -1332,11 +1343,12 @@ const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\x04risk\x18\x01 \x01(\x01R\x04risk\x12\x1e\n" +
 	"\bradius_m\x18\x02 \x01(\x01H\x00R\aradiusM\x88\x01\x01\x12)\n" +
 	"\x10unbounded_reason\x18\x03 \x01(\tR\x0funboundedReasonB\v\n" +
-	"\t_radius_m\"H\n" +
+	"\t_radius_m\"\\\n" +
 	"\bNuisance\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x12\n" +
 	"\x04mean\x18\x02 \x01(\x01R\x04mean\x12\x14\n" +
-	"\x05sigma\x18\x03 \x01(\x01R\x05sigma\"q\n" +
+	"\x05sigma\x18\x03 \x01(\x01R\x05sigma\x12\x12\n" +
+	"\x04unit\x18\x04 \x01(\tR\x04unit\"q\n" +
 	"\bEvidence\x12\x16\n" +
 	"\x06sensor\x18\x01 \x01(\tR\x06sensor\x12\x16\n" +
 	"\x06number\x18\x02 \x01(\x04R\x06number\x12\x12\n" +

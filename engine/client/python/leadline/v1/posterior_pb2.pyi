@@ -73,14 +73,16 @@ class Mode(_message.Message):
     def __init__(self, mass: _Optional[float] = ..., mean: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., covariance: _Optional[_Union[_place_pb2.Covariance, _Mapping]] = ..., edges: _Optional[_Iterable[_Union[EdgeProbability, _Mapping]]] = ...) -> None: ...
 
 class Nuisance(_message.Message):
-    __slots__ = ["mean", "name", "sigma"]
+    __slots__ = ["mean", "name", "sigma", "unit"]
     MEAN_FIELD_NUMBER: _ClassVar[int]
     NAME_FIELD_NUMBER: _ClassVar[int]
     SIGMA_FIELD_NUMBER: _ClassVar[int]
+    UNIT_FIELD_NUMBER: _ClassVar[int]
     mean: float
     name: str
     sigma: float
-    def __init__(self, name: _Optional[str] = ..., mean: _Optional[float] = ..., sigma: _Optional[float] = ...) -> None: ...
+    unit: str
+    def __init__(self, name: _Optional[str] = ..., mean: _Optional[float] = ..., sigma: _Optional[float] = ..., unit: _Optional[str] = ...) -> None: ...
 
 class Place(_message.Message):
     __slots__ = ["along_m", "edge", "name", "position", "probability"]

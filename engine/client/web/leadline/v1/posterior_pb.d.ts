@@ -564,27 +564,36 @@ export declare const ProtectionSchema: GenMessage<Protection>;
  */
 export declare type Nuisance = Message<"leadline.v1.Nuisance"> & {
   /**
-   * Its name, with its unit at the end; a ratio has none (odometer_scale: true
-   * over measured distance, less 1). heading_rad is clockwise from the north
-   * of the map's frame; for true north see Posterior.heading.
+   * Its name, as a suite has it: odometer_scale (true over measured distance,
+   * less 1), gyro_bias_dps, altimeter_offset_m, barometer_offset_m, tide_m,
+   * sound_speed_scale (true over assumed speed, less 1). A bias, an offset or an
+   * error is what was measured less what is true. The heading is not among
+   * them: see Posterior.heading.
    *
    * @generated from field: string name = 1;
    */
   name: string;
 
   /**
-   * Mean, in the unit of the name.
+   * Mean, in the unit.
    *
    * @generated from field: double mean = 2;
    */
   mean: number;
 
   /**
-   * Standard deviation, in the unit of the name.
+   * Standard deviation, in the unit.
    *
    * @generated from field: double sigma = 3;
    */
   sigma: number;
+
+  /**
+   * Its unit, such as m or deg/s; empty for a ratio.
+   *
+   * @generated from field: string unit = 4;
+   */
+  unit: string;
 };
 
 /**
