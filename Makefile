@@ -14,7 +14,7 @@ FUZZ_TIME ?= 60s
 # the code. A tree may be named before it exists.
 RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/livelog/... ./engine/journal/... ./cmd/...
 
-.PHONY: build test race fuzz bench fetch fetch-arrow fetch-clients generate generate-check \
+.PHONY: build test race fuzz credibility bench fetch fetch-arrow fetch-clients generate generate-check \
 	generate-clients generate-clients-check format format-check vet lint lint-only vuln licences licences-check clean
 
 # build makes one static binary.
@@ -36,6 +36,11 @@ race:
 # fuzz fuzzes every target live; they share FUZZ_TIME.
 fuzz:
 	$(GO) run ./tools/fuzz -total $(FUZZ_TIME)
+
+# credibility draws the table of claims about posteriors, in at most an hour, and
+# writes build/credibility.json; a run that was stopped goes on.
+credibility:
+	$(GO) run ./fixtures/credibility/run
 
 # bench runs every benchmark once over, without tests.
 bench:

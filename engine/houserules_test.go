@@ -65,7 +65,12 @@ var mayImport = map[string][]string{
 	"fixtures/scenes":        {"engine/drivefile", "engine/sensor", "engine/study/score", "network", "terrain", "fixtures/drives", "fixtures/outside", "fixtures/roads", "fixtures/sim"},
 	"fixtures/accept":        {"engine/study/score"},
 	"fixtures/outside/fetch": {"fixtures/outside"},
-	"tools/...":              {},
+	"fixtures/credibility": {
+		"engine/filter", "engine/filter/filtertest", "engine/geo", "engine/plane", "engine/sensor", "engine/session", "engine/summary",
+		"engine/study/score", "terrain", "terrain/heightfile", "fixtures/outside", "fixtures/reference",
+	},
+	"fixtures/credibility/run": {"fixtures/credibility"},
+	"tools/...":                {},
 }
 
 // notKernel may not even import kernel: the simulator shares nothing with the
