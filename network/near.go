@@ -7,6 +7,7 @@ import (
 
 	"github.com/tidwall/rtree"
 
+	"leadline/engine/filter"
 	"leadline/engine/geo"
 )
 
@@ -104,4 +105,14 @@ func (d *Data) project(p geo.Point, i int32) (t, distM float64) {
 	t = (float64(w.E*v.E) + float64(w.N*v.N)) / (float64(v.E*v.E) + float64(v.N*v.N))
 	t = math.Min(math.Max(t, 0), 1)
 	return t, geo.Point{E: w.E - float64(t*v.E), N: w.N - float64(t*v.N)}.Norm()
+}
+
+var _ filter.Nearby = (*Map)(nil)
+
+// NearLines implements filter.Nearby by Near.
+func (m *Map) NearLines(dst []filter.Nearest, p geo.Point, radiusM float64) []filter.Nearest {
+	for _, at := range m.Near(p, radiusM) {
+		dst = append(dst, filter.Nearest(at))
+	}
+	return dst
 }

@@ -59,6 +59,10 @@ func (mv *mover) place(chart int32, pos float64, g *gaussian, mass float64, dept
 	}
 	to, weight := links.Of(chart)
 	if len(to) == 0 {
+		if mv.departed != nil {
+			mv.depart(chart, beyond, g, mass)
+			return
+		}
 		mv.left += mass
 		return
 	}
@@ -73,4 +77,20 @@ func (mv *mover) place(chart int32, pos float64, g *gaussian, mass float64, dept
 		}
 		mv.place(next, p, g, float64(mass*weight[i]), depth+1)
 	}
+}
+
+// depart keeps a Gaussian that has gone beyond an end of a chart that leads
+// nowhere: 0 for the start, 1 for the end, and how far along the line's direction.
+func (mv *mover) depart(chart int32, beyond float64, g *gaussian, mass float64) {
+	if mass < Floor {
+		mv.pruned += mass
+		return
+	}
+	end := int32(1)
+	if beyond < 0 {
+		end = 0
+	}
+	own := *g
+	own.mass, own.mean[0] = mass, beyond
+	mv.departed.push(LineKey(chart, end), mv.k, &own)
 }

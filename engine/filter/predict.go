@@ -19,6 +19,9 @@ type Workspace struct {
 	trace  *Trace
 	source []int32
 	into   []int32
+	// What has gone over ends, where that is kept (Depart).
+	departs  bool
+	departed Gaussians
 
 	chart         []int32
 	along         []float64
@@ -61,7 +64,7 @@ func (w *Workspace) Record(t *Trace) { w.trace = t }
 // for. The cost is linear in the occupied cells.
 //
 // At the end of a line the links share the mass out; where there are none it
-// has left the map and is counted in b.LeftMap. The masses then sum to less
+// has left the map and is counted in b.LeftMap, or kept (Workspace.Depart). The masses then sum to less
 // than 1 until the next Update.
 //
 // The belief must have been seeded over the same space; another one, or a
@@ -98,6 +101,9 @@ func (b *Belief) move(space Space, step Step, w *Workspace) {
 	mv := mover{k: k, dim: b.Dim, step: step, out: &w.out, angular: angularMask(b.Quantities)}
 	if b.Dim == 1 {
 		mv.lines = space.(LineSpace).Lines(b.Level)
+		if w.departs {
+			mv.departed = &w.departed
+		}
 	} else {
 		mv.lattice = b.Lattice
 		var most float64
@@ -217,6 +223,7 @@ type mover struct {
 	faint        float64 // the density below which a Gaussian on a plane is not cut
 	cuts         int     // pieces made on a plane, less the Gaussians cut
 	out          *Gaussians
+	departed     *Gaussians      // nil: what leaves the map is counted alone
 	taps         [MaxK][]float64 // of each quantity, since cuts nest
 	pruned, left float64
 }

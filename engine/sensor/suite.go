@@ -57,6 +57,22 @@ type Vehicle struct {
 	// lowest land and sea floor and the highest summit, rounded outwards).
 	LowestM  float64 `yaml:"lowest_m"`
 	HighestM float64 `yaml:"highest_m"`
+	// OffMapPerM is how often, a metre travelled, a vehicle leaves the mapped
+	// roads: for a car park, a yard or a road that the map lacks. 1e-5 unless
+	// said, once in 100 km (practice); 0 says never, and nothing is kept of it.
+	// OnMapPerM is how often it takes to a mapped road, a metre that it moves on
+	// one and in its direction: 0.05 unless said, within some 20 m (practice).
+	// They have no meaning on a plane.
+	OffMapPerM *float64 `yaml:"off_map_per_m"`
+	OnMapPerM  *float64 `yaml:"on_map_per_m"`
+	// LostPerS is how often, a second, a vehicle comes to be somewhere else
+	// without having moved by its sensors, or is lost by the filter: 1e-9
+	// unless said, once in 30 years. MovedPerS is added while it is silent or
+	// stands for more than a minute, when it may be towed or ferried: 1e-5
+	// unless said, once in 28 hours of that. Both are practice; both 0 say
+	// never. They have no meaning on a plane.
+	LostPerS  *float64 `yaml:"lost_per_s"`
+	MovedPerS *float64 `yaml:"moved_per_s"`
 }
 
 // Environment holds what sensors need to know of the surroundings.
@@ -192,6 +208,15 @@ func (s *Suite) For(dim int) *Suite {
 		or(&v.LowestM, -500, -11000)
 		or(&v.HighestM, 9000, 9000)
 	}
+	rate := func(v **float64, roads float64) {
+		if *v == nil && dim == 1 {
+			*v = &roads
+		}
+	}
+	rate(&v.OffMapPerM, 1e-5)
+	rate(&v.OnMapPerM, 0.05)
+	rate(&v.LostPerS, 1e-9)
+	rate(&v.MovedPerS, 1e-5)
 	or(&c.Environment.SeaLevelPressureHPa, isaP0HPa, isaP0HPa)
 	if c.Environment.AirTemperatureC == nil {
 		t := 15.0

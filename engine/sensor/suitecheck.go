@@ -72,6 +72,19 @@ func (s *Suite) problems() []Finding {
 	if (v.LowestM != 0 || v.HighestM != 0) && !(v.HighestM-v.LowestM >= 1) {
 		f.add("vehicle.highest_m", "it must be at least 1 m above lowest_m")
 	}
+	for _, r := range []struct {
+		path string
+		rate *float64
+	}{
+		{"off_map_per_m", v.OffMapPerM},
+		{"on_map_per_m", v.OnMapPerM},
+		{"lost_per_s", v.LostPerS},
+		{"moved_per_s", v.MovedPerS},
+	} {
+		if r.rate != nil {
+			f.within("vehicle."+r.path, *r.rate, 0, 1)
+		}
+	}
 	if t := s.Environment.AirTemperatureC; t != nil {
 		f.within("environment.air_temperature_c", *t, -90, 60)
 	}

@@ -166,7 +166,9 @@ func (s *Session) weigh(ev sensor.Event, l any) {
 	e, err := filter.UpdateWithin(st.belief, s.space, l, s.maxCells, &s.work)
 	if errors.Is(err, filter.ErrContradiction) {
 		e = math.Inf(-1)
-	} else {
+	}
+	e = s.weighAside(ev, l, sensor.IsMotion(ev.Measurement.Kind()), e)
+	if !math.IsInf(e, -1) {
 		st.logEvidence += e
 	}
 	st.record(summary.Evidence{Sensor: ev.Sensor, Number: ev.Number, Kind: ev.Measurement.Kind(), LogEvidence: e})

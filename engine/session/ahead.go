@@ -29,9 +29,11 @@ func (s *Session) Ahead() (*Ahead, error) {
 	c := &Session{
 		vehicle: s.vehicle, space: s.space, lines: s.lines, names: s.names, suite: s.suite, dim: s.dim,
 		cellsM: s.cellsM, maxCells: s.maxCells, maxCarried: maxCarried,
+		rates: s.rates, near: s.near, areaM2: s.areaM2,
 		state: s.state.clone(), accepted: s.accepted, refused: s.refused,
 	}
 	c.motion.Suite = s.suite
+	c.work.Depart(c.rates.off > 0)
 	v := s.suite.Vehicle
 	var err error
 	c.sum, err = summary.New(summary.Options{AlertLimitM: v.AlertLimitM, IntegrityRisk: v.IntegrityRisk, LateralSigmaM: v.LateralSigmaM})
@@ -132,6 +134,7 @@ func (s *Session) wander(to sensor.Time) {
 		parts := math.Max(1, q/(partM*partM))
 		made += float64(st.belief.Cells()) * parts * (1 + 12*math.Min(sigma, partM)/s.cellM())
 		if made > s.maxCarried {
+			s.lose(to.Seconds(st.time), false)
 			s.leaveRoads(float64(whole.Add[0]*whole.Add[0]) + whole.Q[0])
 			st.gapS += to.Seconds(st.time)
 			st.speed = summary.Speed{}

@@ -107,6 +107,7 @@ func TestAheadLeavesTheSession(t *testing.T) {
 // about edges, and its answers agree with one another.
 func TestAheadOffTheRoads(t *testing.T) {
 	c := aheadCases()["roads"]
+	c.config.Suite = onRoads()
 	s := feed(t, open(t, c.config), inOrder(c.events)).s
 	carry := func(seconds, budget float64) (*Ahead, *summary.Posterior) {
 		a, err := s.Ahead()

@@ -37,6 +37,7 @@ func (s *Session) read(sum *summary.Summarizer, dst *summary.Posterior) error {
 		TimeNS: int64(st.time), Frame: s.space.Frame(), Belief: b, Cloud: &s.cloud,
 		Speed: st.speed, Evidence: st.evidence, LogEvidence: st.logEvidence,
 		Accepted: st.processed, Refused: s.refused, RestartMass: b.Restarted,
+		Off: s.offMap(), Lost: st.aside.lost,
 	}
 	if s.lines != nil {
 		in.Lines = s.lines.Lines(b.Level)

@@ -43,7 +43,7 @@ func TestGap(t *testing.T) {
 	}{
 		// The speed is uniform within ±40 m/s. Moments on roads are exact, but
 		// for pruning at 1e-12.
-		{"roads", Config{Space: road, Start: pointStart(road, geo.Point{N: 1000}, 5)}, func(from, to float64) sensor.Measurement {
+		{"roads", Config{Space: road, Suite: onRoads(), Start: pointStart(road, geo.Point{N: 1000}, 5)}, func(from, to float64) sensor.Measurement {
 			return sensor.Travel{Since: at(from), DistanceM: 10 * (to - from), SigmaM: 0.5}
 		}, 40. * 40 / 3, 1e-6},
 		// Uniform in a disc. The lattice is coarsened on the way, which keeps
@@ -97,7 +97,7 @@ func TestGap(t *testing.T) {
 func TestGapsAreCutAtTheirEnds(t *testing.T) {
 	road := straight(3000)
 	run := func(cuts ...float64) *Session {
-		s := open(t, Config{Space: road, Start: pointStart(road, geo.Point{N: 1000}, 5)})
+		s := open(t, Config{Space: road, Suite: onRoads(), Start: pointStart(road, geo.Point{N: 1000}, 5)})
 		var events []sensor.Event
 		for _, x := range [][3]float64{{0, 1, 10}, {3.5, 4.5, 20}, {6, 7, 5}} {
 			events = append(events, sensor.Event{Time: at(x[1]), Sensor: "odo", Measurement: sensor.Travel{Since: at(x[0]), DistanceM: x[2], SigmaM: 0.5}})
@@ -120,7 +120,7 @@ func TestGapsAreCutAtTheirEnds(t *testing.T) {
 	measured := 0.25 + 0.25 + 0.125 + both + 0.25*1.2/1.7
 	d := 10 + 20 + 2.5 + 2.5 + 6.0
 	variance += measured + 0.02*0.02*d*d + 0.15*0.15*d
-	start := open(t, Config{Space: road, Start: pointStart(road, geo.Point{N: 1000}, 5)})
+	start := open(t, Config{Space: road, Suite: onRoads(), Start: pointStart(road, geo.Point{N: 1000}, 5)})
 	_, _, cov := start.state.belief.Moments(road, &start.work)
 	_, _, got := want.state.belief.Moments(road, &want.work)
 	// The scale's drift gives 1e-10·d²·9 = 2e-6 m², of 800.

@@ -78,6 +78,13 @@ var seaOrigin = geo.FromDegrees(10, 50)
 
 func sea() *plane.Plane { return plane.Open(seaOrigin, 20e3, 100) }
 
+// onRoads is the default suite of a vehicle that never leaves mapped roads and
+// is never lost: for figures that the belief on roads has exactly.
+func onRoads() *sensor.Suite {
+	never := new(float64)
+	return &sensor.Suite{Vehicle: sensor.Vehicle{OffMapPerM: never, LostPerS: never, MovedPerS: never}}
+}
+
 func open(t testing.TB, c Config) *Session {
 	t.Helper()
 	s, err := New(c)

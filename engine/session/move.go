@@ -154,6 +154,7 @@ func (s *Session) predictBy(step filter.Step) {
 		step.Add[0], step.Add[1] = 0, 0
 	}
 	s.spread(step)
+	s.moveAside()
 	s.watched(Change{From: m.From, Time: m.To})
 	st.bend = m.BendAfter()
 	travelledM := m.TravelledM()

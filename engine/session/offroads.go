@@ -19,7 +19,14 @@ func (offRoads) Bounds() geo.Box {
 	return geo.Box{Min: geo.Point{E: -inf, N: -inf}, Max: geo.Point{E: inf, N: inf}}
 }
 func (offRoads) DetailM() float64           { return 1 }
-func (offRoads) Sample(dst *filter.Columns) {}
+
+// Sample says that no height is known.
+func (offRoads) Sample(dst *filter.Columns) {
+	nan := math.NaN()
+	for i := range dst.Height {
+		dst.Height[i], dst.SlopeE[i], dst.SlopeN[i], dst.HeightVar[i] = nan, 0, 0, 0
+	}
+}
 
 // leaveRoads turns a belief on roads into one over the plane that they lie on,
 // each of whose places is wider by a variance, m² an axis, and as wide across
@@ -29,6 +36,7 @@ func (s *Session) leaveRoads(addM2 float64) {
 	b := s.state.belief
 	b.Read(&s.cloud, s.space, &s.work)
 	c := &s.cloud
+	s.appendLoose(c)
 	lateral := s.suite.Vehicle.LateralSigmaM * s.suite.Vehicle.LateralSigmaM
 	h := math.Max(math.Sqrt(addM2)/4, 1)
 	p := &filter.Belief{
@@ -70,4 +78,26 @@ func (s *Session) leaveRoads(addM2 float64) {
 		p.Cov = append(p.Cov, ee/m-float64(e*e)+addM2+lateral, en/m-float64(e*n), nn/m-float64(n*n)+addM2+lateral)
 	}
 	s.state.belief, s.space, s.lines, s.names = p, offRoads{s.space}, nil, nil
+}
+
+// appendLoose adds what is off the roads to a belief that leaves them.
+func (s *Session) appendLoose(c *filter.Cloud) {
+	a := &s.state.aside
+	if a.off == 0 {
+		return
+	}
+	share := a.off / (1 - a.lost)
+	for i := range c.Mass {
+		c.Mass[i] *= 1 - share
+	}
+	l := &a.loose
+	k := len(l.Quantities)
+	p := k * (k + 1) / 2
+	for i, m := range l.Mass {
+		c.Mass = append(c.Mass, m*share)
+		c.East, c.North = append(c.East, l.Mean[i*k]), append(c.North, l.Mean[i*k+1])
+		cov := l.Cov[i*p:]
+		c.VarEE, c.VarEN, c.VarNN = append(c.VarEE, cov[0]), append(c.VarEN, cov[1]), append(c.VarNN, cov[2])
+	}
+	a.off = 0
 }

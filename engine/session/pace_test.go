@@ -27,7 +27,7 @@ func TestSpeedDoesNotDependOnRate(t *testing.T) {
 		measured[i] = measured[i-1] + 1.02*d + odoSigma*math.Sqrt(d)*rng.NormFloat64() // 2 % too long
 	}
 	run := func(hz int) outcome {
-		s := open(t, Config{Space: road, Names: road, Start: pointStart(road, geo.Point{N: 20}, 1)})
+		s := open(t, Config{Space: road, Names: road, Suite: onRoads(), Start: pointStart(road, geo.Point{N: 20}, 1)})
 		var events []sensor.Event
 		for i := finest / hz; i < len(measured); i += finest / hz {
 			from := i - finest/hz

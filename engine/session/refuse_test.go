@@ -196,7 +196,7 @@ func TestContradiction(t *testing.T) {
 		config     Config
 		impossible sensor.Measurement
 	}{
-		{"roads", Config{Space: road, Names: road, Start: pointStart(road, geo.Point{E: 10, N: 30}, 5)}, sensor.Sighting{Area: far(road.Frame())}},
+		{"roads", Config{Space: road, Names: road, Suite: onRoads(), Start: pointStart(road, geo.Point{E: 10, N: 30}, 5)}, sensor.Sighting{Area: far(road.Frame())}},
 		{"plane", Config{Space: water, Start: pointStart(water, geo.Point{}, 20), MaxCells: 3000}, sensor.Sighting{Area: far(water.Frame())}},
 	} {
 		t.Run(c.name, func(t *testing.T) {

@@ -122,6 +122,10 @@ type Session struct {
 	maxCarried                     float64
 	followed                       float64 // work of the present move
 	followLimit                    float64 // in tests, see maxFollowed
+	// What is kept beside a belief on roads, see aside.
+	rates  rates
+	near   filter.Nearby // nil: nothing comes back onto the roads
+	areaM2 float64       // of the map's box
 
 	state  state
 	snaps  []snapshot
@@ -203,6 +207,7 @@ func New(c Config) (*Session, error) {
 		return nil, err
 	}
 	s.state.belief = b
+	s.setRates()
 	return s, nil
 }
 

@@ -121,7 +121,7 @@ func TestSpreadBeyondTheMap(t *testing.T) {
 		"displacement": sensor.Displacement{Since: at(0), NorthM: 3e5, CovM2: [3]float64{100, 0, 100}},
 	} {
 		t.Run(name, func(t *testing.T) {
-			s := open(t, Config{Space: streets, Names: streets, Start: pointStart(streets, geo.Point{N: 20}, 5)})
+			s := open(t, Config{Space: streets, Names: streets, Suite: onRoads(), Start: pointStart(streets, geo.Point{N: 20}, 5)})
 			s.followLimit = 1e5
 			o := feed(t, s, []sensor.Event{{Time: at(3600), Sensor: "odo", Measurement: m}})
 			p := o.posteriors[0]

@@ -33,6 +33,7 @@ type state struct {
 	// previous holds the last processed event of each voice, in order.
 	previous  []lastEvent
 	processed uint64 // events
+	aside     aside
 }
 
 type lastEvent struct {
@@ -44,6 +45,7 @@ type lastEvent struct {
 func (st *state) clone() state {
 	c := *st
 	c.belief = st.belief.Clone()
+	c.aside.loose = st.aside.loose.Clone()
 	c.previous = slices.Clone(st.previous)
 	c.evidence = slices.Clone(st.evidence)
 	c.pace.stretches = slices.Clone(st.pace.stretches)

@@ -43,6 +43,7 @@ func (s *Session) Rest() {
 		panic("session: " + err.Error()) // New made the same
 	}
 	s.work, s.cloud, s.sum, s.fresh = filter.Workspace{}, filter.Cloud{}, sum, false
+	s.work.Depart(s.rates.off > 0)
 }
 
 func (s *Session) watched(c Change) {

@@ -41,7 +41,45 @@ type Input struct {
 	RestartMass float64 // given to hypotheses that the belief had not followed
 	// What monitors say.
 	Contradicted bool
-	OffMapMass   float64
+	// Off is what is known of a vehicle that is off the map, nil for nothing;
+	// Lost is the probability that the vehicle is where neither it nor the
+	// belief says. The belief has what is left of 1.
+	Off  *OffRoads
+	Lost float64
+	// OffMapMass is how much of the belief itself lies where the map ends or
+	// knows nothing, on a plane.
+	OffMapMass float64
+}
+
+// OffRoads is a hypothesis beside the belief: that the vehicle is not on the map,
+// with a position of its own.
+type OffRoads struct {
+	Probability float64
+	Loose       *filter.Loose
+}
+
+// off returns the probability of being off the map, in all.
+func (in *Input) off() float64 {
+	off := float64((1 - in.Lost) * in.OffMapMass)
+	if in.Off != nil {
+		off += in.Off.Probability
+	}
+	return off
+}
+
+// beside reports an impossible hypothesis beside the belief.
+func (in *Input) beside() error {
+	off := 0.0
+	if in.Off != nil {
+		off = in.Off.Probability
+		if in.Off.Loose == nil || in.Off.Loose.Len() == 0 || len(in.Off.Loose.Quantities) != in.Belief.K()+1 || in.Belief.Dim != 1 {
+			return errors.New("summary: what is off the map needs Gaussians beside a belief on lines, over the same quantities")
+		}
+	}
+	if !(off >= 0 && in.Lost >= 0 && off+in.Lost < 1) {
+		return fmt.Errorf("summary: probabilities of %v off the map and %v of being lost; they must leave something of 1", off, in.Lost)
+	}
+	return nil
 }
 
 // check reports what no posterior could be made of.
@@ -99,6 +137,9 @@ func (in *Input) check() error {
 		if l.got != n {
 			return bad(l.what, l.got, n)
 		}
+	}
+	if err := in.beside(); err != nil {
+		return err
 	}
 	last := int32(-1)
 	for i, chart := range c.Chart {

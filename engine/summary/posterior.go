@@ -42,7 +42,11 @@ type Posterior struct {
 
 	// Radii around the mean that hold 50, 95 and 99 %.
 	Radius50M, Radius95M, Radius99M float64
-	Protection                      Protection
+	// OffMap is the probability of being off the map, whose places are part of
+	// mean, covariance, radii, modes and protection; Lost that of being where
+	// neither map nor motion says, which is not.
+	OffMap, Lost float64
+	Protection   Protection
 
 	Nuisances []Nuisance
 	// EntropyNats is the differential entropy of the place, in nats relative
@@ -175,6 +179,6 @@ type Evidence struct {
 type Counts struct {
 	Accepted, Refused uint64
 	Pruned            float64
-	LeftMap           float64
+	LeftMap           float64 // over a road's end, where that is not followed
 	Restart           float64
 }

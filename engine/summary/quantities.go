@@ -41,7 +41,7 @@ func (s *Summarizer) moments(in *Input, q, k int, angular bool) (mean, sigma flo
 	if angular {
 		sin, cos := 0.0, 0.0
 		lastVar, shrink := 0.0, 1.0
-		for i, m := range s.mass {
+		for i, m := range s.mass[:s.cells] {
 			if v := covs[i*size+at]; v != lastVar {
 				lastVar, shrink = v, kernel.Exp(-0.5*v)
 			}
@@ -50,6 +50,12 @@ func (s *Summarizer) moments(in *Input, q, k int, angular bool) (mean, sigma flo
 			sin += float64(m * sn)
 			cos += float64(m * c)
 		}
+		s.offMoments(in, q, func(m, mean, v float64) {
+			m *= kernel.Exp(-0.5 * v)
+			sn, c := kernel.Sincos(mean)
+			sin += float64(m * sn)
+			cos += float64(m * c)
+		})
 		r := float64(sin*sin) + float64(cos*cos)
 		sigma = noHeading
 		if r > 0 {
@@ -58,19 +64,38 @@ func (s *Summarizer) moments(in *Input, q, k int, angular bool) (mean, sigma flo
 		return kernel.Atan2(sin, cos), sigma
 	}
 	first := means[q]
-	for i, m := range s.mass {
+	for i, m := range s.mass[:s.cells] {
 		mean += float64(m * (means[i*k+q] - first))
 	}
+	s.offMoments(in, q, func(m, x, _ float64) { mean += float64(m * (x - first)) })
 	mean += first
 	variance := 0.0
-	for i, m := range s.mass {
+	for i, m := range s.mass[:s.cells] {
 		d := means[i*k+q] - mean
 		variance += float64(m * (covs[i*size+at] + float64(d*d)))
 	}
+	s.offMoments(in, q, func(m, x, v float64) {
+		d := x - mean
+		variance += float64(m * (v + float64(d*d)))
+	})
 	return mean, math.Sqrt(math.Max(variance, 0))
 }
 
-// entropy returns the differential entropy of the place, in nats, relative to
+// offMoments calls use with the mass, mean and variance of the quantity q of each
+// Gaussian that is off the map.
+func (s *Summarizer) offMoments(in *Input, q int, use func(m, mean, variance float64)) {
+	if in.Off == nil {
+		return
+	}
+	l := in.Off.Loose
+	k := len(l.Quantities)
+	size, at := k*(k+1)/2, filter.Packed(q+1, q+1)
+	for i, m := range s.mass[s.cells:] {
+		use(m, l.Mean[i*k+q+1], l.Cov[i*size+at])
+	}
+}
+
+// entropy returns the differential entropy of the place of a vehicle on the map, in nats, relative to
 // 1 m or 1 m²: by the chain rule that of the cells and the mean one within a
 // cell,
 //
@@ -85,11 +110,11 @@ func (s *Summarizer) moments(in *Input, q, k int, angular bool) (mean, sigma flo
 func (s *Summarizer) entropy(in *Input) float64 {
 	c, b := in.Cloud, in.Belief
 	h, last, lastLog := 0.0, 1.0, 0.0
-	for i := 0; i < len(s.mass); {
+	for i := 0; i < s.cells; {
 		// One cell: entries i to j.
 		j := i + 1
 		if len(b.Key) > 0 {
-			for j < len(s.mass) && b.Key[j] == b.Key[i] {
+			for j < s.cells && b.Key[j] == b.Key[i] {
 				j++
 			}
 		}
@@ -97,6 +122,7 @@ func (s *Summarizer) entropy(in *Input) float64 {
 		for _, v := range s.mass[i:j] {
 			m += v
 		}
+		m /= s.onShare
 		if m > leastEntropy {
 			// The smaller of size² and (2πe)^d·det, with its logarithm only
 			// where it is not that of the last cell.
@@ -104,7 +130,7 @@ func (s *Summarizer) entropy(in *Input) float64 {
 			if s.dim == 1 {
 				size2 = in.Lines.WidthM[c.Chart[i]]
 				size2 *= size2
-				det = twoPiE * s.alongVariance(c, i, j, m)
+				det = twoPiE * s.alongVariance(c, i, j, m*s.onShare)
 			} else {
 				size2 = b.Lattice.SpacingM * b.Lattice.SpacingM
 				size2 *= size2

@@ -192,8 +192,9 @@ func TestProtectionUnbounded(t *testing.T) {
 		{"pruned", func(in *Input) { in.Belief.Pruned = 1.01e-8 }, false},
 		{"left", func(in *Input) { in.Belief.LeftMap = 1.01e-8 }, false},
 		{"restarted", func(in *Input) { in.RestartMass = 1.01e-8 }, false},
-		{"off the map", func(in *Input) { in.OffMapMass = 1.01e-8 }, false},
+		{"lost below", func(in *Input) { in.Lost = 0.99e-8 }, true},
 		{"together", func(in *Input) { in.Belief.Pruned, in.RestartMass = 0.6e-8, 0.6e-8 }, false},
+		{"off the map, but in the mixture", func(in *Input) { in.OffMapMass = 0.3; in.Belief.Pruned = 1e-9 }, true},
 		{"not a number", func(in *Input) { in.RestartMass = math.NaN() }, false},
 	} {
 		in := base()

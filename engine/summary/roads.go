@@ -13,10 +13,10 @@ func (s *Summarizer) mostProbable(dst *Posterior, in *Input) {
 	b, c := in.Belief, in.Cloud
 	best, at, mass := -1.0, 0, 0.0
 	to := 1
-	for i := 0; i < len(s.mass); {
+	for i := 0; i < s.cells; {
 		j := i + 1
 		if len(b.Key) > 0 {
-			for j < len(s.mass) && b.Key[j] == b.Key[i] {
+			for j < s.cells && b.Key[j] == b.Key[i] {
 				j++
 			}
 		}

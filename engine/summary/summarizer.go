@@ -3,6 +3,7 @@ package summary
 import (
 	"math"
 
+	"leadline/engine/filter"
 	"leadline/engine/geo"
 	"leadline/engine/kernel"
 )
@@ -10,6 +11,9 @@ import (
 // ReasonLostMass is why a protection radius is unbounded when the belief has
 // lost more than a tenth of the integrity risk.
 const ReasonLostMass = "the mass pruned, restarted or off the map exceeds a tenth of the integrity risk"
+
+// ReasonLost is why it is unbounded when the vehicle may be anywhere.
+const ReasonLost = "the probability that the vehicle is lost exceeds a tenth of the integrity risk"
 
 // Summarizer makes posteriors. It keeps its working memory between calls, and
 // the last belief for Inside and Region. One goroutine owns it. Use New.
@@ -23,6 +27,8 @@ type Summarizer struct {
 	dim               int
 	east, north, mass []float64
 	covs              []Cov   // with the lateral spread
+	cells             int     // entries of the belief; after them come those off the map
+	onShare           float64 // what the belief's entries hold of all
 	square            Cov     // of which, on a lattice, not the belief's own
 	typicalM          float64 // width of a typical entry
 	grainM            float64 // below which the density has no detail
@@ -68,7 +74,9 @@ func New(opt Options) (*Summarizer, error) {
 // a belief without mass, and an error that names the entry for one that is no
 // mixture of Gaussians; dst is then as it was.
 //
-// Masses are divided by their sum. The covariance is the second moment of the
+// Masses are divided by their sum; what is off the map is part of the mixture,
+// and being lost is not: mean, covariance, radii and modes are those of a vehicle
+// that is not. The covariance is the second moment of the
 // whole mixture about its mean. The radii are those of circles around the mean,
 // outside which lies at most 50, 5, 1 % and the integrity risk of the mixture;
 // they are at most 2 % too large and never too small by more than 0.1 %, what
@@ -105,7 +113,8 @@ func (s *Summarizer) Summarize(dst *Posterior, in *Input) error {
 	dst.Radius99M = math.Max(s.radius(0.01, rms)/scale, dst.Radius95M)
 	dst.Protection = s.protection(in, rms)
 	dst.Protection.RadiusM = math.Max(dst.Protection.RadiusM/scale, dst.Radius99M)
-	dst.Status = statusOf(in.Contradicted, in.OffMapMass, best, heavy, dst.Radius95M, s.opt.AlertLimitM)
+	dst.OffMap, dst.Lost = in.off(), in.Lost
+	dst.Status = statusOf(in.Contradicted, dst.OffMap, best*(1-in.Lost), heavy, dst.Radius95M, s.opt.AlertLimitM)
 	return nil
 }
 
@@ -140,11 +149,19 @@ func (s *Summarizer) load(in *Input) (mean geo.Point, err error) {
 	s.north = append(s.north[:0], c.North...)
 	s.mass, s.covs = resize(s.mass, n), resize(s.covs, n)
 	mean = geo.Point{E: e0 + e/sum, N: n0 + no/sum}
+	s.cells, s.onShare = n, 1
+	if in.Off != nil {
+		off := in.Off.Probability / (1 - in.Lost)
+		s.onShare = 1 - off
+		at := s.appendOff(in.Off.Loose, off)
+		mean.E += float64(off * (at.E - mean.E))
+		mean.N += float64(off * (at.N - mean.N))
+	}
 	lateral := s.opt.LateralSigmaM * s.opt.LateralSigmaM
 	var cov Cov
 	typical := 0.0
 	for i, m := range c.Mass {
-		m /= sum
+		m = m / sum * s.onShare
 		s.mass[i] = m
 		v := Cov{c.VarEE[i], c.VarEN[i], c.VarNN[i]}
 		if s.dim == 1 {
@@ -159,7 +176,14 @@ func (s *Summarizer) load(in *Input) (mean geo.Point, err error) {
 		cov.EN += float64(m * (v.EN + float64(de*dn)))
 		cov.NN += float64(m * (v.NN + float64(dn*dn)))
 	}
-	s.spread, s.typicalM = cov, typical
+	for i := n; i < len(s.mass); i++ {
+		m, v := s.mass[i], s.covs[i]
+		de, dn := s.east[i]-mean.E, s.north[i]-mean.N
+		cov.EE += float64(m * (v.EE + float64(de*de)))
+		cov.EN += float64(m * (v.EN + float64(de*dn)))
+		cov.NN += float64(m * (v.NN + float64(dn*dn)))
+	}
+	s.spread, s.typicalM = cov, typical/s.onShare
 	s.square = Cov{}
 	switch {
 	case s.dim == 1:
@@ -174,6 +198,23 @@ func (s *Summarizer) load(in *Input) (mean geo.Point, err error) {
 }
 
 const sqrt12 = 3.4641016151377544
+
+// appendOff adds the Gaussians off the map, which hold a share of all, and
+// returns their mean.
+func (s *Summarizer) appendOff(l *filter.Loose, share float64) (mean geo.Point) {
+	k := len(l.Quantities)
+	p := k * (k + 1) / 2
+	for i, m := range l.Mass {
+		e, n := l.Mean[i*k], l.Mean[i*k+1]
+		mean.E += float64(m * (e - l.Mean[0]))
+		mean.N += float64(m * (n - l.Mean[1]))
+		s.east, s.north = append(s.east, e), append(s.north, n)
+		s.mass = append(s.mass, m*share)
+		c := l.Cov[i*p:]
+		s.covs = append(s.covs, Cov{c[0], c[1], c[2]})
+	}
+	return mean.Add(geo.Point{E: l.Mean[0], N: l.Mean[1]})
+}
 
 // fillSquares makes the points of a lattice as wide as its cells: a variance of
 // at least h²/12 an axis. The moments do without where the masses' own variance
@@ -211,13 +252,17 @@ func across(v Cov, lateral float64) Cov {
 // leaves no circle to speak of.
 func (s *Summarizer) protection(in *Input, rms float64) Protection {
 	p := Protection{Risk: s.opt.IntegrityRisk}
-	lost := in.Belief.Pruned + in.Belief.LeftMap + in.RestartMass + in.OffMapMass
-	if !(lost < 0.1*p.Risk) {
+	if !(in.Lost < 0.1*p.Risk) {
+		p.RadiusM, p.Reason = math.Inf(1), ReasonLost
+		return p
+	}
+	dropped := in.Belief.Pruned + in.Belief.LeftMap + in.RestartMass
+	if !(dropped < 0.1*p.Risk) {
 		p.RadiusM, p.Reason = math.Inf(1), ReasonLostMass
 		return p
 	}
 	p.Bounded = true
-	p.RadiusM = s.radius((p.Risk-lost)/tailExcess, rms)
+	p.RadiusM = s.radius((p.Risk-dropped-in.Lost)/tailExcess, rms)
 	return p
 }
 

@@ -1,7 +1,9 @@
 package filtertest
 
 import (
+	"cmp"
 	"math"
+	"slices"
 
 	"leadline/engine/filter"
 	"leadline/engine/geo"
@@ -107,4 +109,25 @@ func (r *Road) Sample(dst *filter.Columns, chart []int32, alongM []float64, _ fl
 			}
 		}
 	}
+}
+
+var _ filter.Nearby = (*Road)(nil)
+
+// NearLines implements filter.Nearby by trying each decimetre of every chart.
+func (r *Road) NearLines(dst []filter.Nearest, p geo.Point, radiusM float64) []filter.Nearest {
+	first := len(dst)
+	for c := range r.charts {
+		best := filter.Nearest{Chart: int32(c), DistM: math.Inf(1)}
+		for s := 0.0; s < r.LengthM[c]+0.1; s += 0.1 { // At stays at the end
+			at, _, _ := r.At(int32(c), s)
+			if d := at.Sub(p).Norm(); d < best.DistM {
+				best.AlongM, best.DistM = math.Min(s, r.LengthM[c]), d
+			}
+		}
+		if best.DistM <= radiusM {
+			dst = append(dst, best)
+		}
+	}
+	slices.SortStableFunc(dst[first:], func(a, b filter.Nearest) int { return cmp.Compare(a.DistM, b.DistM) })
+	return dst
 }

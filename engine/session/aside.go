@@ -1,0 +1,238 @@
+package session
+
+import (
+	"errors"
+	"math"
+
+	"leadline/engine/filter"
+	"leadline/engine/geo"
+	"leadline/engine/kernel"
+	"leadline/engine/sensor"
+	"leadline/engine/summary"
+)
+
+// aside is what is kept beside the belief on roads: that the vehicle is on none
+// of them, with a position of its own, and that it is lost, which says nothing of
+// where it is. The belief has what is left of 1. Nothing is kept of them on a
+// plane.
+type aside struct {
+	off   float64 // probability
+	loose filter.Loose
+	lost  float64 // probability
+	// roadM is the way travelled since roads and plane last exchanged mass,
+	// quietS for how long the vehicle has been silent or standing.
+	roadM, quietS float64
+}
+
+func (a *aside) on() float64 { return 1 - a.off - a.lost }
+
+// The hypotheses beside the belief.
+const (
+	// exchangeM is after how many metres roads and plane exchange mass: over
+	// less, the comparison with the road (its power a metre) tells little.
+	exchangeM = 5.0
+	// smallShare is the probability of being off below which loose is kept as
+	// few Gaussians, and does not come back onto roads: a tenth of an integrity
+	// risk of 0.01.
+	smallShare  = 1e-3
+	fewLoose    = 6
+	mostLoose   = 32
+	leastOn     = 1e-9 // of each hypothesis that there is, so that it can grow again
+	enterSigmaM = 5.0  // about a road: lane, map error, and what the driver cuts off
+	enterRad    = 15 * math.Pi / 180
+	// quietAfterS is after how long a silence or a stop is longer than those of
+	// traffic (practice).
+	quietAfterS = 60.0
+	quietMPS    = 0.1
+)
+
+// rates are those of the suite, 0 where it has none.
+type rates struct{ off, in, lost, moved float64 }
+
+func (s *Session) setRates() {
+	if s.lines == nil {
+		return
+	}
+	v := &s.suite.Vehicle
+	s.rates = rates{*v.OffMapPerM, *v.OnMapPerM, *v.LostPerS, *v.MovedPerS}
+	loose, ok := filter.NewLoose(s.state.belief.Quantities)
+	s.near, _ = s.lines.(filter.Nearby)
+	if !ok || s.near == nil {
+		s.rates.off = 0 // nobody knows where it goes, or how it comes back
+	}
+	s.state.aside.loose = loose
+	s.work.Depart(s.rates.off > 0)
+	if s.rates.lost > 0 || s.rates.moved > 0 {
+		s.areaM2 = s.extent()
+	}
+}
+
+// extent is the area of the map's box, m², at least that over which outlying
+// fixes are flat.
+func (s *Session) extent() float64 {
+	level := s.lines.Levels() - 1
+	lines := s.lines.Lines(level)
+	var at filter.Columns
+	n := len(lines.LengthM)
+	chart, along := make([]int32, n), make([]float64, n)
+	for i := range chart {
+		chart[i] = int32(i)
+	}
+	at.Resize(filter.WantPosition, 1, n)
+	s.lines.Sample(&at, chart, along, lines.WidthM[0])
+	box := geo.EmptyBox()
+	for i := range at.East {
+		box = box.Extend(geo.Point{E: at.East[i], N: at.North[i]})
+	}
+	return math.Max((box.Max.E-box.Min.E)*(box.Max.N-box.Min.N), 1e8)
+}
+
+// moveAside moves what is beside the belief by the motion that was gathered and
+// taken by the belief.
+func (s *Session) moveAside() {
+	if s.lines == nil || s.rates == (rates{}) {
+		return
+	}
+	st, m := &s.state, &s.motion
+	a := &st.aside
+	travelled, dt := m.TravelledM(), m.Seconds()
+	if a.loose.Len() > 0 {
+		at, heading, variance := a.loose.Heaviest()
+		known := m.HasVelocity
+		m.HasVelocity = false // that is a velocity along the road
+		step, err := m.Step(a.loose.Quantities, 2, s.space.Frame(), sensor.Pose{At: at, HeadingRad: heading, HeadingVar: variance})
+		m.HasVelocity = known
+		if err != nil {
+			panic("session: " + err.Error()) // it has a heading
+		}
+		a.loose.Predict(step, &s.work)
+	}
+	if s.rates.off > 0 {
+		s.exchange(travelled)
+	}
+	s.lose(dt, m.GapS() == 0 && travelled > quietMPS*dt)
+}
+
+// lose lets a while pass in which the vehicle may have come to be elsewhere.
+func (s *Session) lose(dt float64, moves bool) {
+	a := &s.state.aside
+	before := math.Max(a.quietS-quietAfterS, 0)
+	a.quietS += dt
+	rate := float64(s.rates.lost*dt) + float64(s.rates.moved*(math.Max(a.quietS-quietAfterS, 0)-before))
+	if moves {
+		a.quietS = 0
+	}
+	keep := kernel.Exp(-rate)
+	a.off *= keep
+	a.lost = math.Min(1-float64(keep*(1-a.lost)), 1-leastOn)
+}
+
+// exchange lets mass leave the roads and come back to them, after each exchangeM
+// travelled, and takes what has gone over the ends of roads.
+func (s *Session) exchange(travelledM float64) {
+	st := &s.state
+	a, v := &st.aside, &s.suite.Vehicle
+	lateral := v.LateralSigmaM * v.LateralSigmaM
+	part := filter.Loose{Quantities: a.loose.Quantities}
+	if share := st.belief.Departed(&part, s.lines, lateral, mostLoose, &s.work); share > 0 {
+		s.leave(&part, share)
+	}
+	a.roadM += travelledM
+	if a.roadM < exchangeM {
+		return
+	}
+	way := a.roadM
+	a.roadM = 0
+	if a.off >= smallShare {
+		e := filter.Entry{Hazard: s.rates.in * way, LateralVar: enterSigmaM * enterSigmaM, HeadingVar: enterRad * enterRad}
+		_, off := a.loose.Enter(st.belief, s.near, e, a.on(), a.off, &s.work)
+		a.off = off
+	}
+	if st.belief.Cells() < s.wideSize && a.on() > leastOn {
+		part := filter.Loose{Quantities: a.loose.Quantities}
+		st.belief.Loosen(&part, s.lines, lateral, mostLoose, &s.work)
+		s.leave(&part, 1-kernel.Exp(-s.rates.off*way))
+	}
+}
+
+// leave adds a share of the belief's mass to what is off.
+func (s *Session) leave(part *filter.Loose, share float64) {
+	a := &s.state.aside
+	if part.Len() == 0 {
+		return
+	}
+	gain := math.Min(a.on()*share, a.on()-leastOn)
+	if !(gain > 0) {
+		return
+	}
+	most := fewLoose
+	if a.off+gain >= smallShare {
+		most = mostLoose
+	}
+	a.loose.Mix(part, gain/(a.off+gain), most)
+	a.off += gain
+}
+
+// weighAside weighs what is beside the belief by what has weighed the belief,
+// with the log evidence on, and returns the evidence of the whole: -Inf if it is
+// impossible for all of it.
+func (s *Session) weighAside(ev sensor.Event, l any, way bool, on float64) float64 {
+	a := &s.state.aside
+	if a.off == 0 && a.lost == 0 {
+		return on
+	}
+	off, lost := math.Inf(-1), 0.0
+	if way {
+		linear, _ := l.(filter.LinearLikelihood)
+		lost = sensor.WayElsewhere(linear, s.state.bend, s.motion.TravelledM())
+		off = lost
+	} else {
+		c := s.context(ev)
+		lost = sensor.Elsewhere(ev, c, s.areaM2)
+		if a.off > 0 {
+			off = s.weighOff(ev, c, l)
+		}
+	}
+	logs := [3]float64{on + kernel.Log(a.on()), off + kernel.Log(a.off), lost + kernel.Log(a.lost)}
+	most := math.Max(logs[0], math.Max(logs[1], logs[2]))
+	if math.IsInf(most, -1) {
+		return most
+	}
+	sum := 0.0
+	for i := range logs {
+		logs[i] = kernel.Exp(logs[i] - most)
+		sum += logs[i]
+	}
+	a.off, a.lost = logs[1]/sum, logs[2]/sum
+	// The belief stays, however little it has, to be come back to.
+	if over := a.off + a.lost - (1 - leastOn); over > 0 {
+		scale := (1 - leastOn) / (a.off + a.lost)
+		a.off *= scale
+		a.lost *= scale
+	}
+	return most + kernel.Log(sum)
+}
+
+// weighOff weighs the loose Gaussians by an event and returns its log evidence.
+func (s *Session) weighOff(ev sensor.Event, c sensor.Context, of any) float64 {
+	a := &s.state.aside
+	c.Dim, c.Quantities, c.Plane, c.CellM = 2, a.loose.Quantities, nil, 0
+	ls, flat := sensor.OffRoads(ev, c)
+	if len(ls) == 0 {
+		return flat
+	}
+	e, err := a.loose.Update(offRoads{s.space}, ls[0], &s.work)
+	if errors.Is(err, filter.ErrContradiction) {
+		return math.Inf(-1)
+	}
+	return e
+}
+
+// offMap is what the summary takes of it.
+func (s *Session) offMap() *summary.OffRoads {
+	a := &s.state.aside
+	if a.off == 0 {
+		return nil
+	}
+	return &summary.OffRoads{Probability: a.off, Loose: &a.loose}
+}
