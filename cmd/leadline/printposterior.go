@@ -49,6 +49,12 @@ func printPosterior(w io.Writer, p *leadlinev1.Posterior) {
 	} else {
 		line("protection", "unbounded at a risk of %.1g: %s", q.GetRisk(), q.GetUnboundedReason())
 	}
+	if p.GetOffMap() >= 0.01 {
+		line("off the map", "%.1f %%", 100*p.GetOffMap())
+	}
+	if p.GetLost() >= 0.01 || p.GetLostAlarm() {
+		line("lost", "%.1f %%: no figure holds then", 100*p.GetLost())
+	}
 	best := p.GetMostProbable()
 	line("most probable", "lon %.6f, lat %.6f", best.GetPosition().GetLon(), best.GetPosition().GetLat())
 	for i, e := range p.GetEdges() {

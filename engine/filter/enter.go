@@ -158,6 +158,9 @@ func (b *Belief) inject(space LineSpace, from *Gaussians, places []Nearest, keep
 	k := len(b.Quantities)
 	lines := space.Lines(b.Level)
 	mv := mover{k: k, dim: 1, out: &w.out, angular: angularMask(b.Quantities), lines: lines}
+	if w.departs {
+		mv.departed = &w.departed
+	}
 	w.out.reset()
 	var g gaussian
 	for i := range b.Mass {
@@ -177,5 +180,15 @@ func (b *Belief) inject(space LineSpace, from *Gaussians, places []Nearest, keep
 	b.Pruned += mv.pruned
 	b.LeftMap += mv.left
 	w.merger.merge(&b.Gaussians, &w.out, k, mv.angular, perCell(1), nil)
+	total := 0.0
+	for _, m := range b.Mass {
+		total += m
+	}
+	for i := range b.Mass {
+		b.Mass[i] /= total
+	}
+	for i := range w.departed.Mass { // relative to the belief, see Departed
+		w.departed.Mass[i] /= total
+	}
 	b.thin(nil)
 }

@@ -55,6 +55,9 @@ func (p *Plane) Bounds() geo.Box { return p.bounds }
 // DetailM implements filter.PlaneSpace.
 func (p *Plane) DetailM() float64 { return p.detailM }
 
+// HasHeights reports whether there is a height field.
+func (p *Plane) HasHeights() bool { return p.field != nil }
+
 // Sample implements filter.PlaneSpace. Without a field every height is
 // unknown.
 func (p *Plane) Sample(dst *filter.Columns) {

@@ -55,6 +55,7 @@ func message(p *summary.Posterior, vehicle string, m Map, now time.Time) *leadli
 			Pruned: p.Counts.Pruned, LeftMap: p.Counts.LeftMap, Restart: p.Counts.Restart,
 		},
 		GapS: p.GapS, Revises: p.Revises,
+		OffMap: p.OffMap, Lost: p.Lost, LostAlarm: p.LostAlarm,
 		AsOf: timestamppb.New(now), AgeS: now.Sub(time.Unix(0, p.TimeNS)).Seconds(),
 	}
 	if p.EdgeCount > 0 {

@@ -82,7 +82,7 @@ func (a *Ahead) Carry(to sensor.Time) (*summary.Posterior, error) {
 	if err := s.read(s.sum, p); err != nil {
 		panic(fmt.Sprintf("session: %v", err)) // a belief is never empty
 	}
-	p.GapS = st.gapS
+	p.GapS, p.LostAlarm = st.gapS, st.aside.alarm
 	if _, left := s.space.(offRoads); left {
 		c := p.CovFrame
 		p.EntropyNats = 0.5 * kernel.Log(float64(2*math.Pi*math.E*2*math.Pi*math.E)*(float64(c.EE*c.NN)-float64(c.EN*c.EN)))

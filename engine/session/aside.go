@@ -22,6 +22,7 @@ type aside struct {
 	// roadM is the way travelled since roads and plane last exchanged mass,
 	// quietS for how long the vehicle has been silent or standing.
 	roadM, quietS float64
+	alarm         bool // lost
 }
 
 func (a *aside) on() float64 { return 1 - a.off - a.lost }
@@ -43,8 +44,21 @@ const (
 	// quietAfterS is after how long a silence or a stop is longer than those of
 	// traffic (practice).
 	quietAfterS = 60.0
-	quietMPS    = 0.1
+	// alarmFrom is the probability of being lost that is said aloud.
+	alarmFrom = 0.5
+	quietMPS  = 0.1
 )
+
+// raise keeps the alarm of being lost by the posterior.
+func (a *aside) raise(p *summary.Posterior) bool {
+	switch {
+	case p.Lost >= alarmFrom:
+		a.alarm = true
+	case p.Status == summary.Located:
+		a.alarm = false
+	}
+	return a.alarm
+}
 
 // rates are those of the suite, 0 where it has none.
 type rates struct{ off, in, lost, moved float64 }

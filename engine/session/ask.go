@@ -2,7 +2,9 @@ package session
 
 import (
 	"fmt"
+	"math"
 
+	"leadline/engine/filter"
 	"leadline/engine/geo"
 	"leadline/engine/sensor"
 	"leadline/engine/summary"
@@ -17,6 +19,7 @@ func (s *Session) summarise() *summary.Posterior {
 		panic(fmt.Sprintf("session: %v", err)) // a belief is never empty
 	}
 	p.GapS = st.gapS
+	p.LostAlarm = st.aside.raise(p)
 	st.pose = sensor.Pose{At: p.MeanFrame, HeadingVar: sensor.NoHeading}
 	if p.Heading.Known {
 		g, _ := s.space.Frame().Convergence(p.MeanFrame)
@@ -39,6 +42,9 @@ func (s *Session) read(sum *summary.Summarizer, dst *summary.Posterior) error {
 		Accepted: st.processed, Refused: s.refused, RestartMass: b.Restarted,
 		Off: s.offMap(), Lost: st.aside.lost,
 	}
+	if p, ok := s.space.(filter.PlaneSpace); ok {
+		in.OffMapMass = s.beyond(p)
+	}
 	if s.lines != nil {
 		in.Lines = s.lines.Lines(b.Level)
 	}
@@ -46,6 +52,40 @@ func (s *Session) read(sum *summary.Summarizer, dst *summary.Posterior) error {
 		in.Names = s.names
 	}
 	return sum.Summarize(dst, &in)
+}
+
+// beyond is how much of the belief lies where a plane's map ends or knows no
+// height; nothing of one that has left the roads.
+func (s *Session) beyond(p filter.PlaneSpace) float64 {
+	c := &s.cloud
+	off, all := 0.0, 0.0
+	switch h, ok := p.(interface{ HasHeights() bool }); {
+	case !ok:
+		return 0
+	case h.HasHeights():
+		s.ground.Resize(filter.WantHeight, 2, len(c.Mass))
+		copy(s.ground.East, c.East)
+		copy(s.ground.North, c.North)
+		p.Sample(&s.ground)
+		for i, m := range c.Mass {
+			all += m
+			if h := s.ground.Height[i]; h != h {
+				off += m
+			}
+		}
+	default:
+		box := p.Bounds()
+		for i, m := range c.Mass {
+			all += m
+			if !box.Contains(geo.Point{E: c.East[i], N: c.North[i]}) {
+				off += m
+			}
+		}
+	}
+	if !(off > 0) {
+		return 0
+	}
+	return math.Min(off/all, 1)
 }
 
 // refresh has the summarizer look at the present belief, if that has moved on

@@ -18,7 +18,7 @@ func (offRoads) Bounds() geo.Box {
 	inf := math.Inf(1)
 	return geo.Box{Min: geo.Point{E: -inf, N: -inf}, Max: geo.Point{E: inf, N: inf}}
 }
-func (offRoads) DetailM() float64           { return 1 }
+func (offRoads) DetailM() float64 { return 1 }
 
 // Sample says that no height is known.
 func (offRoads) Sample(dst *filter.Columns) {

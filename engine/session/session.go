@@ -134,6 +134,7 @@ type Session struct {
 	motion sensor.Motion
 	cuts   []sensor.Time
 	cloud  filter.Cloud
+	ground filter.Columns // under the cloud, on a plane
 	sum    *summary.Summarizer
 	fresh  bool                 // sum has seen the present belief
 	recent []*summary.Posterior // by time; the first final of them are final

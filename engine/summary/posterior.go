@@ -46,7 +46,10 @@ type Posterior struct {
 	// mean, covariance, radii, modes and protection; Lost that of being where
 	// neither map nor motion says, which is not.
 	OffMap, Lost float64
-	Protection   Protection
+	// LostAlarm says that being lost is the likeliest, or was, and the vehicle has
+	// not been located since. The session sets it.
+	LostAlarm  bool
+	Protection Protection
 
 	Nuisances []Nuisance
 	// EntropyNats is the differential entropy of the place, in nats relative

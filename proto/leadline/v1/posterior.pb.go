@@ -30,7 +30,7 @@ const (
 	Status_STATUS_UNSPECIFIED Status = 0
 	// The measurements do not fit the belief: the evidence monitor is alarmed.
 	Status_STATUS_CONTRADICTED Status = 1
-	// At least half of the mass has left the map.
+	// At least half of the probability is off the map.
 	Status_STATUS_OFF_MAP Status = 2
 	// One mode holds at least 0.95, and the 95 % radius is within the suite's
 	// alert limit.
@@ -162,8 +162,17 @@ type Posterior struct {
 	// The fingerprint of a newer map of the same name; empty if there is none.
 	// The drive keeps the one it was opened with.
 	NewerMapFingerprint string `protobuf:"bytes,32,opt,name=newer_map_fingerprint,json=newerMapFingerprint,proto3" json:"newer_map_fingerprint,omitempty"`
-	unknownFields       protoimpl.UnknownFields
-	sizeCache           protoimpl.SizeCache
+	// Probability that the vehicle is off the map, where its position is part of
+	// mean, covariance, radii, modes, regions and protection.
+	OffMap float64 `protobuf:"fixed64,33,opt,name=off_map,json=offMap,proto3" json:"off_map,omitempty"`
+	// Probability that the vehicle is lost: where neither the map nor its motion
+	// says. Those figures are then of a vehicle that is not.
+	Lost float64 `protobuf:"fixed64,34,opt,name=lost,proto3" json:"lost,omitempty"`
+	// Whether being lost is the likeliest, or was, and the vehicle has not been
+	// located since.
+	LostAlarm     bool `protobuf:"varint,35,opt,name=lost_alarm,json=lostAlarm,proto3" json:"lost_alarm,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *Posterior) Reset() {
@@ -418,6 +427,27 @@ func (x *Posterior) GetNewerMapFingerprint() string {
 		return x.NewerMapFingerprint
 	}
 	return ""
+}
+
+func (x *Posterior) GetOffMap() float64 {
+	if x != nil {
+		return x.OffMap
+	}
+	return 0
+}
+
+func (x *Posterior) GetLost() float64 {
+	if x != nil {
+		return x.Lost
+	}
+	return 0
+}
+
+func (x *Posterior) GetLostAlarm() bool {
+	if x != nil {
+		return x.LostAlarm
+	}
+	return false
 }
 
 // Place is the cell of the greatest density.
@@ -1131,7 +1161,8 @@ type Counts struct {
 	Refused uint64 `protobuf:"varint,2,opt,name=refused,proto3" json:"refused,omitempty"`
 	// Probability of what was too improbable to carry on and was dropped.
 	Pruned float64 `protobuf:"fixed64,3,opt,name=pruned,proto3" json:"pruned,omitempty"`
-	// Probability of having left the map.
+	// Probability of having gone over the end of a road, where the vehicle is not
+	// followed there.
 	LeftMap float64 `protobuf:"fixed64,4,opt,name=left_map,json=leftMap,proto3" json:"left_map,omitempty"`
 	// Probability given to places that the belief had not followed.
 	Restart       float64 `protobuf:"fixed64,5,opt,name=restart,proto3" json:"restart,omitempty"`
@@ -1255,7 +1286,7 @@ var File_leadline_v1_posterior_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\n" +
-	"\x1bleadline/v1/posterior.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/place.proto\"\xa9\n" +
+	"\x1bleadline/v1/posterior.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/place.proto\"\xf5\n" +
 	"\n" +
 	"\tPosterior\x12.\n" +
 	"\x04time\x18\x01 \x01(\v2\x1a.google.protobuf.TimestampR\x04time\x12\x18\n" +
@@ -1297,7 +1328,11 @@ const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\x05age_s\x18\x1a \x01(\x01R\x04ageS\x12\x1f\n" +
 	"\vpredicted_s\x18\x1f \x01(\x01R\n" +
 	"predictedS\x122\n" +
-	"\x15newer_map_fingerprint\x18  \x01(\tR\x13newerMapFingerprintB\x13\n" +
+	"\x15newer_map_fingerprint\x18  \x01(\tR\x13newerMapFingerprint\x12\x17\n" +
+	"\aoff_map\x18! \x01(\x01R\x06offMap\x12\x12\n" +
+	"\x04lost\x18\" \x01(\x01R\x04lost\x12\x1d\n" +
+	"\n" +
+	"lost_alarm\x18# \x01(\bR\tlostAlarmB\x13\n" +
 	"\x11_area_probability\"\xab\x01\n" +
 	"\x05Place\x121\n" +
 	"\bposition\x18\x01 \x01(\v2\x15.leadline.v1.PositionR\bposition\x12 \n" +

@@ -245,6 +245,30 @@ export declare type Posterior = Message<"leadline.v1.Posterior"> & {
    * @generated from field: string newer_map_fingerprint = 32;
    */
   newerMapFingerprint: string;
+
+  /**
+   * Probability that the vehicle is off the map, where its position is part of
+   * mean, covariance, radii, modes, regions and protection.
+   *
+   * @generated from field: double off_map = 33;
+   */
+  offMap: number;
+
+  /**
+   * Probability that the vehicle is lost: where neither the map nor its motion
+   * says. Those figures are then of a vehicle that is not.
+   *
+   * @generated from field: double lost = 34;
+   */
+  lost: number;
+
+  /**
+   * Whether being lost is the likeliest, or was, and the vehicle has not been
+   * located since.
+   *
+   * @generated from field: bool lost_alarm = 35;
+   */
+  lostAlarm: boolean;
 };
 
 /**
@@ -668,7 +692,8 @@ export declare type Counts = Message<"leadline.v1.Counts"> & {
   pruned: number;
 
   /**
-   * Probability of having left the map.
+   * Probability of having gone over the end of a road, where the vehicle is not
+   * followed there.
    *
    * @generated from field: double left_map = 4;
    */
@@ -728,7 +753,7 @@ export enum Status {
   CONTRADICTED = 1,
 
   /**
-   * At least half of the mass has left the map.
+   * At least half of the probability is off the map.
    *
    * @generated from enum value: STATUS_OFF_MAP = 2;
    */
