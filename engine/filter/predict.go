@@ -65,7 +65,8 @@ func (w *Workspace) Record(t *Trace) { w.trace = t }
 //
 // At the end of a line the links share the mass out; where there are none it
 // has left the map and is counted in b.LeftMap, or kept (Workspace.Depart). The masses then sum to less
-// than 1 until the next Update.
+// than 1 until the next Update. A belief of which nothing would be left stays as
+// it is, and counts as gone.
 //
 // The belief must have been seeded over the same space; another one, or a
 // step of the wrong size, is a mistake of the caller and panics.
@@ -137,6 +138,9 @@ func (b *Belief) move(space Space, step Step, w *Workspace) {
 	b.Lattice = mv.lattice
 	b.Pruned += mv.pruned
 	b.LeftMap += mv.left
+	if len(w.out.Key) == 0 && len(w.departed.Key) == 0 {
+		return // nothing would be left: it stays where it is, and counts as gone
+	}
 	var into []int32
 	if w.trace != nil {
 		w.into = resize(w.into, len(w.source))

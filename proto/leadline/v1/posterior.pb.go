@@ -164,13 +164,13 @@ type Posterior struct {
 	NewerMapFingerprint string `protobuf:"bytes,32,opt,name=newer_map_fingerprint,json=newerMapFingerprint,proto3" json:"newer_map_fingerprint,omitempty"`
 	// Probability that the vehicle is off the map, where its position is part of
 	// mean, covariance, radii, modes, regions and protection.
-	OffMap float64 `protobuf:"fixed64,33,opt,name=off_map,json=offMap,proto3" json:"off_map,omitempty"`
+	OffMap float64 `protobuf:"fixed64,35,opt,name=off_map,json=offMap,proto3" json:"off_map,omitempty"`
 	// Probability that the vehicle is lost: where neither the map nor its motion
 	// says. Those figures are then of a vehicle that is not.
-	Lost float64 `protobuf:"fixed64,34,opt,name=lost,proto3" json:"lost,omitempty"`
+	Lost float64 `protobuf:"fixed64,36,opt,name=lost,proto3" json:"lost,omitempty"`
 	// Whether being lost is the likeliest, or was, and the vehicle has not been
 	// located since.
-	LostAlarm     bool `protobuf:"varint,35,opt,name=lost_alarm,json=lostAlarm,proto3" json:"lost_alarm,omitempty"`
+	LostAlarm     bool `protobuf:"varint,37,opt,name=lost_alarm,json=lostAlarm,proto3" json:"lost_alarm,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -1329,10 +1329,10 @@ const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\vpredicted_s\x18\x1f \x01(\x01R\n" +
 	"predictedS\x122\n" +
 	"\x15newer_map_fingerprint\x18  \x01(\tR\x13newerMapFingerprint\x12\x17\n" +
-	"\aoff_map\x18! \x01(\x01R\x06offMap\x12\x12\n" +
-	"\x04lost\x18\" \x01(\x01R\x04lost\x12\x1d\n" +
+	"\aoff_map\x18# \x01(\x01R\x06offMap\x12\x12\n" +
+	"\x04lost\x18$ \x01(\x01R\x04lost\x12\x1d\n" +
 	"\n" +
-	"lost_alarm\x18# \x01(\bR\tlostAlarmB\x13\n" +
+	"lost_alarm\x18% \x01(\bR\tlostAlarmB\x13\n" +
 	"\x11_area_probability\"\xab\x01\n" +
 	"\x05Place\x121\n" +
 	"\bposition\x18\x01 \x01(\v2\x15.leadline.v1.PositionR\bposition\x12 \n" +

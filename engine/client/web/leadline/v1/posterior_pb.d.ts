@@ -250,7 +250,7 @@ export declare type Posterior = Message<"leadline.v1.Posterior"> & {
    * Probability that the vehicle is off the map, where its position is part of
    * mean, covariance, radii, modes, regions and protection.
    *
-   * @generated from field: double off_map = 33;
+   * @generated from field: double off_map = 35;
    */
   offMap: number;
 
@@ -258,7 +258,7 @@ export declare type Posterior = Message<"leadline.v1.Posterior"> & {
    * Probability that the vehicle is lost: where neither the map nor its motion
    * says. Those figures are then of a vehicle that is not.
    *
-   * @generated from field: double lost = 34;
+   * @generated from field: double lost = 36;
    */
   lost: number;
 
@@ -266,7 +266,7 @@ export declare type Posterior = Message<"leadline.v1.Posterior"> & {
    * Whether being lost is the likeliest, or was, and the vehicle has not been
    * located since.
    *
-   * @generated from field: bool lost_alarm = 35;
+   * @generated from field: bool lost_alarm = 37;
    */
   lostAlarm: boolean;
 };
