@@ -14,6 +14,10 @@
 // splits and merges Gaussians, always by moments and in a fixed order; Update
 // is the one place that exponentiates and normalises.
 //
+// This is a marginalised (Rao-Blackwellised) filter on a grid: given the cell,
+// the nuisances are linear and Gaussian, and each cell has a Kalman filter for
+// them. docs/nuisances.md derives it, and states what merging loses.
+//
 // Nothing here does I/O, reads a clock, starts a goroutine or hides a random
 // source: the same calls give the same bits.
 package filter
