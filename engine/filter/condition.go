@@ -89,7 +89,7 @@ func (w *noiseWork) condition(g *gaussian, k int, angular uint, t *Terms, i int)
 	p := g.ofRows(&gain, k, m, rows)
 	if len(w.parts) == 1 && math.IsInf(w.logFlat, -1) {
 		log, inv := w.part(0, p, r, t.Extra[i])
-		g.gainBy(k, m, &gain, r, inv)
+		g.gainBy(k, m, &gain, w.shifted(0, r), inv)
 		return float64(w.power*w.logW[0]) + log
 	}
 	// Mixture: responsibilities, then one Gaussian by moments.
@@ -121,7 +121,7 @@ func (w *noiseWork) condition(g *gaussian, k int, angular uint, t *Terms, i int)
 			post := prior
 			if c < n {
 				_, inv := w.part(c, p, r, t.ExtraOf(i, c))
-				post.gainBy(k, m, &gain, r, inv)
+				post.gainBy(k, m, &gain, w.shifted(c, r), inv)
 			}
 			post.mass = share
 			if mix.mass == 0 {
@@ -137,15 +137,18 @@ func (w *noiseWork) condition(g *gaussian, k int, angular uint, t *Terms, i int)
 	// One of many views of the same error: a scale mixture updates with the
 	// information of its parts, each by its share, times the power.
 	var info sym2
+	mean := 0.0
 	for c := range n {
 		if share := logs[c] / sum; share > 1e-6 {
 			inv := w.noise(c, t.ExtraOf(i, c)).inverse(m)
 			info.a += float64(share * inv.a)
+			mean += float64(float64(share*inv.a) * w.parts[c].Mean)
 			info.b += float64(share * inv.b)
 			info.c += float64(share * inv.c)
 		}
 	}
 	if info.a > 0 {
+		r[0] -= mean / info.a
 		r0 := info.inverse(m)
 		s := sym2{p.a + r0.a/w.power, p.b + r0.b/w.power, p.c + r0.c/w.power}
 		g.gainBy(k, m, &gain, r, s.inverse(m))
@@ -180,6 +183,12 @@ func (g *gaussian) ofRows(gain *[2][MaxK]float64, k, m int, rows []float64) (p s
 	return p
 }
 
+// shifted is a residual about the mean of part c.
+func (w *noiseWork) shifted(c int, r [2]float64) [2]float64 {
+	r[0] -= w.parts[c].Mean
+	return r
+}
+
 // noise is the covariance of part c at a position.
 func (w *noiseWork) noise(c int, extra float64) sym2 {
 	cov := &w.parts[c].Cov
@@ -191,6 +200,7 @@ func (w *noiseWork) noise(c int, extra float64) sym2 {
 // inverse of the innovation covariance.
 func (w *noiseWork) part(c int, p sym2, r [2]float64, extra float64) (log float64, inv sym2) {
 	noise, beta := w.noise(c, extra), w.power
+	r = w.shifted(c, r)
 	if beta == 1 {
 		s := sym2{p.a + noise.a, p.b + noise.b, p.c + noise.c}
 		log, inv = s.logNormal(w.m, r)

@@ -47,7 +47,7 @@ type Terms struct {
 
 // Noise is a mixture for the error v of a linear likelihood:
 //
-//	p(v) = Σ Weight·N(v; 0, Cov + Extra·I) + FlatWeight·FlatDensity,
+//	p(v) = Σ Weight·N(v; Mean, Cov + Extra·I) + FlatWeight·FlatDensity,
 //
 // (Wide in place of Extra where Terms says so), all raised to Power. Power below 1 tempers a measurement that shares its
 // error with its neighbours: a sum of n of them with Power 1/n counts as one.
@@ -61,13 +61,15 @@ type Noise struct {
 }
 
 // NoisePart is one Gaussian of a Noise: Weight in (0, 1], packed covariance.
-// Cov[0] alone is used for one residual component.
+// Cov[0] alone is used for one residual component, which Mean, in its units,
+// puts off 0: an error that is mostly to one side.
 type NoisePart struct {
 	Weight float64
 	Cov    [3]float64
+	Mean   float64
 }
 
 // Gaussian is the noise of a plain measurement with standard deviation sigma.
 func Gaussian(sigma float64) Noise {
-	return Noise{Parts: []NoisePart{{1, [3]float64{sigma * sigma, 0, sigma * sigma}}}}
+	return Noise{Parts: []NoisePart{{Weight: 1, Cov: [3]float64{sigma * sigma, 0, sigma * sigma}}}}
 }

@@ -23,11 +23,13 @@ func conditionOne(g gaussian, k int, n Noise, r float64, row []float64, extra fl
 // quantities that it depends on.
 func TestMixtureUpdateAgainstIntegration(t *testing.T) {
 	noises := map[string]Noise{
-		"plain":  Gaussian(0.8),
-		"two":    {Parts: []NoisePart{{0.9, [3]float64{0.25}}, {0.1, [3]float64{16}}}},
-		"flat":   {Parts: []NoisePart{{0.95, [3]float64{0.25}}}, FlatWeight: 0.05, FlatDensity: 0.01},
-		"both":   {Parts: []NoisePart{{0.8, [3]float64{0.25}}, {0.15, [3]float64{4}}}, FlatWeight: 0.05, FlatDensity: 0.02},
-		"shared": {Parts: []NoisePart{{1, [3]float64{0.25}}}, Power: 0.3},
+		"plain":          Gaussian(0.8),
+		"two":            {Parts: []NoisePart{{Weight: 0.9, Cov: [3]float64{0.25}}, {Weight: 0.1, Cov: [3]float64{16}}}},
+		"flat":           {Parts: []NoisePart{{Weight: 0.95, Cov: [3]float64{0.25}}}, FlatWeight: 0.05, FlatDensity: 0.01},
+		"both":           {Parts: []NoisePart{{Weight: 0.8, Cov: [3]float64{0.25}}, {Weight: 0.15, Cov: [3]float64{4}}}, FlatWeight: 0.05, FlatDensity: 0.02},
+		"one side":       {Parts: []NoisePart{{Weight: 0.7, Cov: [3]float64{0.25}}, {Weight: 0.25, Cov: [3]float64{1}, Mean: 3}}, FlatWeight: 0.05, FlatDensity: 0.02},
+		"shared and off": {Parts: []NoisePart{{Weight: 1, Cov: [3]float64{0.25}, Mean: 1.5}}, Power: 0.3},
+		"shared":         {Parts: []NoisePart{{Weight: 1, Cov: [3]float64{0.25}}}, Power: 0.3},
 	}
 	for name, n := range noises {
 		for _, r := range []float64{0, 0.7, 3, 9} {
@@ -46,7 +48,7 @@ func TestMixtureUpdateAgainstIntegration(t *testing.T) {
 				p := n.FlatWeight * n.FlatDensity
 				for _, part := range n.Parts {
 					s := part.Cov[0] + extra
-					p += part.Weight * math.Exp(-v*v/2/s) / math.Sqrt(2*math.Pi*s)
+					p += part.Weight * math.Exp(-(v-part.Mean)*(v-part.Mean)/2/s) / math.Sqrt(2*math.Pi*s)
 				}
 				return math.Pow(p, power)
 			}
@@ -87,7 +89,7 @@ func TestTwoRowsAgainstOneByOne(t *testing.T) {
 	g := gaussian{mass: 1}
 	g.cov[0], g.cov[1], g.cov[2], g.cov[3], g.cov[4], g.cov[5] = 2, 0.3, 1.5, -0.2, 0.1, 0.7
 	rows := []float64{1, 0.2, 0, -0.3, 1, 0.5}
-	n := Noise{Parts: []NoisePart{{1, [3]float64{0.5, 0, 0.8}}}}
+	n := Noise{Parts: []NoisePart{{Weight: 1, Cov: [3]float64{0.5, 0, 0.8}}}}
 	w := newNoiseWork(&n, 2)
 	var terms Terms
 	terms.Reset(1, 2, 3)
@@ -96,9 +98,9 @@ func TestTwoRowsAgainstOneByOne(t *testing.T) {
 	terms.Extra[0] = 0.05
 	both := g
 	log := w.condition(&both, 3, 0, &terms, 0)
-	one, log1 := conditionOne(g, 3, Noise{Parts: []NoisePart{{1, [3]float64{0.5}}}}, 1.1, rows[:3], 0.05)
+	one, log1 := conditionOne(g, 3, Noise{Parts: []NoisePart{{Weight: 1, Cov: [3]float64{0.5}}}}, 1.1, rows[:3], 0.05)
 	moved := rows[3]*one.mean[0] + rows[4]*one.mean[1] + rows[5]*one.mean[2]
-	one, log2 := conditionOne(one, 3, Noise{Parts: []NoisePart{{1, [3]float64{0.8}}}}, -0.6-moved, rows[3:], 0.05)
+	one, log2 := conditionOne(one, 3, Noise{Parts: []NoisePart{{Weight: 1, Cov: [3]float64{0.8}}}}, -0.6-moved, rows[3:], 0.05)
 	if math.Abs(log-log1-log2) > 1e-13 {
 		t.Errorf("log evidence %v at once, %v one by one", log, log1+log2)
 	}
@@ -111,7 +113,7 @@ func TestTwoRowsAgainstOneByOne(t *testing.T) {
 	}
 	// N((1,2); 0, [2 .5; .5 1]): q = (1·1 - 2·.5·2 + 2·4)/1.75 = 4.
 	want := -2 - 0.5*math.Log(1.75) - math.Log(2*math.Pi)
-	n = Noise{Parts: []NoisePart{{1, [3]float64{2, 0.5, 1}}}}
+	n = Noise{Parts: []NoisePart{{Weight: 1, Cov: [3]float64{2, 0.5, 1}}}}
 	w = newNoiseWork(&n, 2)
 	terms.Reset(1, 2, 2)
 	copy(terms.Residual, []float64{1, 2})

@@ -152,7 +152,7 @@ func (q *predictions) into(p *Predictive, noise *Noise, m int, circular bool) {
 		for c := range noise.Parts {
 			s, weight := q.spread(i, c, noise), mass*noise.Parts[c].Weight
 			if m == 1 {
-				sum[0].add(weight, normalTails(r[0]/math.Sqrt(s.a)))
+				sum[0].add(weight, normalTails((r[0]-noise.Parts[c].Mean)/math.Sqrt(s.a)))
 				continue
 			}
 			s = s.turned(turn)

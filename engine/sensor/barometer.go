@@ -86,7 +86,7 @@ func (m Barometer) likelihood(c *Context, d Sensor) any {
 	if m.HasPressure {
 		z = StandardHeightM(m.PressureHPa, c.Suite.Environment.SeaLevelPressureHPa)
 	}
-	l := c.heights(d, z+d.Mounting.DownM, m.SigmaM, 0, d.Mounting.ForwardM, d.Mounting.RightM)
+	l := c.heights(d, z+d.Mounting.DownM, 0, m.SigmaM, d.Mounting.ForwardM, d.Mounting.RightM)
 	if d.has(NuisanceBarometerOffset) {
 		l.with(c, filter.BarometerOffset, 1)
 	}

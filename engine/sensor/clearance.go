@@ -22,10 +22,11 @@ func (m Clearance) Check(Time) error {
 // likelihood: altitude - clearance - down = height of the ground + offset + v,
 // with down the sensor's mounting below the reference point that the altitude
 // is of, and the altimeter_offset_m of a sensor that describes one (type
-// heights).
+// heights). Where a canopy is in the way, the ground seems higher by anything
+// up to its height.
 func (m Clearance) likelihood(c *Context, d Sensor) any {
-	z := m.AltitudeM - m.ClearanceM - d.Mounting.DownM
-	l := c.heights(d, z, m.SigmaM, m.ClearanceM, d.Mounting.ForwardM, d.Mounting.RightM)
+	l := c.heights(d, m.AltitudeM-d.Mounting.DownM, m.ClearanceM, m.SigmaM, d.Mounting.ForwardM, d.Mounting.RightM)
+	l.noise = d.canopied(l.noise)
 	if d.has(NuisanceAltimeterOffset) {
 		l.with(c, filter.AltimeterOffset, 1)
 	}

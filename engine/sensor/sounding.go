@@ -63,27 +63,32 @@ const maxKeptBeams = 16
 //
 // Beams close together see the same error of the map, so they are thinned:
 // from the transducer outwards a beam is kept if it is at least two of the
-// map's details (raster posts) from the transducer and from every beam kept
+// lengths over which that error is correlated, and two of the map's details
+// (raster posts), from the transducer and from every beam kept
 // before, at most 16. Those share no post of the raster and are taken as
-// independent. Beams need a heading and a map to look beside the vehicle;
+// independent (their errors are correlated by at most e⁻² = 0.14). Beams need a heading and a map to look beside the vehicle;
 // without them only the depth below the transducer counts.
 func (m Sounding) likelihoods(c *Context, d Sensor) []any {
 	down := m.TransducerDepthM + d.Mounting.DownM
 	f0, r0 := d.Mounting.ForwardM, d.Mounting.RightM
-	under := func(depthM, sigmaM, distanceM, forward, right float64) any {
-		return c.heights(d, -(depthM+down), sigmaM, distanceM, forward, right).
-			with(c, filter.Tide, -1).with(c, filter.SoundSpeedScale, depthM)
-	}
-	out := []any{under(m.DepthBelowTransducerM, m.SigmaM, m.DepthBelowTransducerM, f0, r0)}
+	out := []any{c.sounded(d, down, m.DepthBelowTransducerM, m.SigmaM, f0, r0)}
 	a := newArm(c, 1, 0)
 	if len(m.Beams) == 0 || c.Dim != 2 || c.Plane == nil || a.heading < 0 && !a.known {
 		return out
 	}
-	for _, b := range thin(m.Beams, 2*c.Plane.DetailM()) {
-		out = append(out, under(b.DepthBelowTransducerM, b.SigmaM,
-			hypot(hypot(b.ForwardM, b.RightM), b.DepthBelowTransducerM), f0+b.ForwardM, r0+b.RightM))
+	for _, b := range thin(m.Beams, 2*max(c.mapErrorLengthM(), c.Plane.DetailM())) {
+		l := c.sounded(d, down, b.DepthBelowTransducerM, b.SigmaM, f0+b.ForwardM, r0+b.RightM)
+		l.slants(hypot(b.ForwardM, b.RightM))
+		out = append(out, l)
 	}
 	return out
+}
+
+// sounded is a depth at a place beside the vehicle, from a transducer so far
+// down.
+func (c *Context) sounded(d Sensor, downM, depthM, sigmaM, forward, right float64) *heights {
+	return c.heights(d, -downM, depthM, sigmaM, forward, right).
+		with(c, filter.Tide, -1).with(c, filter.SoundSpeedScale, depthM)
 }
 
 // thin keeps beams at least apartM from the transducer and from each other,

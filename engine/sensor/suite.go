@@ -83,7 +83,18 @@ type Environment struct {
 	// said. A day's weather changes it by 10 hPa and more, 8 m of altitude a
 	// hPa: give it.
 	SeaLevelPressureHPa float64 `yaml:"sea_level_pressure_hpa"`
+	// MapErrorLengthM is over what distance the error of the map's heights is
+	// correlated, falling by 1/e: unless said, a raster's detail on a plane,
+	// between whose posts heights are interpolated, and 100 m on roads (a
+	// cutting or a bridge; practice).
+	MapErrorLengthM float64 `yaml:"map_error_length_m"`
 }
+
+// What BeamReturn may say.
+const (
+	ReturnMean    = "mean"
+	ReturnNearest = "nearest"
+)
 
 // Sensor describes one sensor by its name in events.
 type Sensor struct {
@@ -114,8 +125,17 @@ type Sensor struct {
 	// correlationDefault.
 	CorrelationS *float64 `yaml:"correlation_s"`
 	// BeamWidthDeg is the full opening angle of a beam that measures a
-	// height: the ground within its footprint is averaged.
+	// height, and BeamReturn which of the ground within its footprint counts:
+	// the mean, unless said, or the nearest.
 	BeamWidthDeg float64 `yaml:"beam_width_deg"`
+	BeamReturn   string  `yaml:"beam_return"`
+	// AttitudeSigmaDeg is by how much pitch and roll stand off the vertical,
+	// an axis, where they are not taken out.
+	AttitudeSigmaDeg float64 `yaml:"attitude_sigma_deg"`
+	// CanopyProbability is the part of a clearance's measurements that end
+	// above the ground, by anything up to CanopyHeightM: trees, roofs.
+	CanopyProbability float64 `yaml:"canopy_probability"`
+	CanopyHeightM     float64 `yaml:"canopy_height_m"`
 	// VerticalDatum names what the sensor's heights refer to; it is compared
 	// with the map's.
 	VerticalDatum string     `yaml:"vertical_datum"`

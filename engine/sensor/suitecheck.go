@@ -89,6 +89,7 @@ func (s *Suite) problems() []Finding {
 		f.within("environment.air_temperature_c", *t, -90, 60)
 	}
 	f.unless0("environment.sea_level_pressure_hpa", s.Environment.SeaLevelPressureHPa, 800, 1200)
+	f.unless0("environment.map_error_length_m", s.Environment.MapErrorLengthM, 0.1, 1e5)
 	if len(s.Sensors) > maxSensors {
 		f.add("sensors", "%d sensors: at most %d are allowed", len(s.Sensors), maxSensors)
 		return f
@@ -171,19 +172,35 @@ func (f *findings) sensor(path string, d Sensor) {
 	if d.HeavyProbability != 0 || d.HeavyFactor != 0 {
 		f.within(path+".heavy_factor", d.HeavyFactor, 1, 100)
 	}
-	if d.outlier()+d.HeavyProbability > 0.95 {
-		f.add(path, "outlier_probability and heavy_probability leave nothing for the sensor itself")
+	if d.outlier()+d.HeavyProbability+d.CanopyProbability > 0.95 {
+		f.add(path, "outlier_probability, heavy_probability and canopy_probability leave nothing for the sensor itself")
 	}
 	f.unless0(path+".max_range_m", d.MaxRangeM, 1, maxFarM)
 	if d.CorrelationS != nil {
 		f.within(path+".correlation_s", *d.CorrelationS, 0, 3600)
 	}
 	f.within(path+".beam_width_deg", d.BeamWidthDeg, 0, 120)
+	if d.BeamReturn != "" && d.BeamReturn != ReturnMean && d.BeamReturn != ReturnNearest {
+		f.add(path+".beam_return", "%q is not known: give %s or %s", d.BeamReturn, ReturnMean, ReturnNearest)
+	}
+	f.within(path+".attitude_sigma_deg", d.AttitudeSigmaDeg, 0, 30)
+	f.canopy(path, d)
 	if len(d.VerticalDatum) > maxName {
 		f.add(path+".vertical_datum", "at most %d bytes are allowed", maxName)
 	}
 	if len(d.Nuisances) > 16 {
 		f.add(path+".nuisances", "at most 16 are allowed")
+	}
+}
+
+func (f *findings) canopy(path string, d Sensor) {
+	f.within(path+".canopy_probability", d.CanopyProbability, 0, 0.9)
+	switch {
+	case d.CanopyProbability == 0 && d.CanopyHeightM == 0:
+	case d.Kind != KindClearance:
+		f.add(path+".canopy_probability", "a %s sees no canopy: it is of a %s", d.Kind, KindClearance)
+	default:
+		f.within(path+".canopy_height_m", d.CanopyHeightM, 0.1, 200)
 	}
 }
 

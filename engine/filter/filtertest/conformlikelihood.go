@@ -301,6 +301,7 @@ func (at *At) density(dst []float64, l filter.LinearLikelihood, space filter.Spa
 			a, b, c := part.Cov[0]+extra, part.Cov[1], part.Cov[2]+extra
 			x := terms.Residual[i*m]
 			if m == 1 {
+				x -= part.Mean
 				p += part.Weight * math.Exp(-x*x/(2*a)) / math.Sqrt(2*math.Pi*a)
 				continue
 			}
