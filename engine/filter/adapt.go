@@ -57,8 +57,9 @@ func (t *Tiles) roughness() (je, jn float64) {
 }
 
 // Spacing is at most fineScale of the belief's scale where the budget allows;
-// it doubles when twice the spacing would still be below coarseScale. The gap
-// between the two keeps it from swinging.
+// it doubles when twice the spacing would still be below coarseScale, unless
+// that would make measurements blunt (Tight). The gap between the two keeps it
+// from swinging.
 const (
 	fineScale   = 0.4
 	coarseScale = 0.3
@@ -83,7 +84,7 @@ func Adapt(b *Belief, maxCells int, w *Workspace) bool {
 	case h > fineScale*scale && 4*b.occupiedCells() <= maxCells:
 		b.refine(&w.tiles)
 		return true
-	case 2*h < coarseScale*scale || b.occupiedCells() > maxCells:
+	case 2*h < coarseScale*scale && b.Tight == 0 || b.occupiedCells() > maxCells:
 		b.coarsen(&w.tiles)
 		return true
 	}
@@ -201,9 +202,23 @@ type latticeMoments struct {
 	ee, en, nn float64
 }
 
-func (b *Belief) latticeMoments() (m latticeMoments) {
-	for i, at := range b.Tiles.At {
-		for x, v := range b.Tiles.tile(i) {
+func (b *Belief) latticeMoments() latticeMoments {
+	m := b.Tiles.moments()
+	if m.mass == 0 {
+		return m
+	}
+	h := b.Lattice.SpacingM
+	m.ee *= h * h / m.mass
+	m.en *= h * h / m.mass
+	m.nn *= h * h / m.mass
+	m.mean = geo.Point{E: b.Lattice.Origin.E + h*m.mean.E, N: b.Lattice.Origin.N + h*m.mean.N}
+	return m
+}
+
+// moments are those in cells, the second ones not yet divided by the mass.
+func (t *Tiles) moments() (m latticeMoments) {
+	for i, at := range t.At {
+		for x, v := range t.tile(i) {
 			if v != 0 {
 				m.mass += v
 				m.mean.E += float64(v * float64(at.Col*TileSide+int32(x%TileSide)))
@@ -216,8 +231,8 @@ func (b *Belief) latticeMoments() (m latticeMoments) {
 	}
 	m.mean.E /= m.mass
 	m.mean.N /= m.mass
-	for i, at := range b.Tiles.At {
-		for x, v := range b.Tiles.tile(i) {
+	for i, at := range t.At {
+		for x, v := range t.tile(i) {
 			if v != 0 {
 				de := float64(at.Col*TileSide+int32(x%TileSide)) - m.mean.E
 				dn := float64(at.Row*TileSide+int32(x/TileSide)) - m.mean.N
@@ -227,11 +242,6 @@ func (b *Belief) latticeMoments() (m latticeMoments) {
 			}
 		}
 	}
-	h := b.Lattice.SpacingM
-	m.ee *= h * h / m.mass
-	m.en *= h * h / m.mass
-	m.nn *= h * h / m.mass
-	m.mean = geo.Point{E: b.Lattice.Origin.E + h*m.mean.E, N: b.Lattice.Origin.N + h*m.mean.N}
 	return m
 }
 
@@ -268,16 +278,21 @@ func (ts *tileSpace) cover(tiles []TileAt, span func(TileAt) (lo, hi TileAt)) {
 
 // empty sets ts.spare to empty tiles and ts.index to them.
 func (ts *tileSpace) empty(at []TileAt) {
+	ts.spare.At = at
+	ts.indexTiles(&ts.spare)
+	ts.spare.Mass = resize(ts.spare.Mass, len(ts.spare.At)*tileCells)
+	clear(ts.spare.Mass)
+}
+
+// indexTiles sets ts.index to tiles.
+func (ts *tileSpace) indexTiles(t *Tiles) {
 	if ts.index == nil {
 		ts.index = map[TileAt]int32{}
 	}
 	clear(ts.index)
-	ts.spare.At = at
-	for i, t := range at {
-		ts.index[t] = int32(i)
+	for i, at := range t.At {
+		ts.index[at] = int32(i)
 	}
-	ts.spare.Mass = resize(ts.spare.Mass, len(ts.spare.At)*tileCells)
-	clear(ts.spare.Mass)
 }
 
 // add adds mass to a cell; its tile must be in ts.index.

@@ -19,6 +19,10 @@ type Belief struct {
 
 	Gaussians       // every belief but a plane without quantities
 	Tiles     Tiles // a plane without quantities
+	// Tight is the variance, m², by which a lattice has yet to spread before
+	// Adapt may double its spacing, which would have made the last measurement
+	// blunt: see UpdateWithin.
+	Tight float64
 
 	// Counts since the belief was seeded, as fractions of the whole mass.
 	Pruned  float64 // too little to carry on

@@ -40,6 +40,10 @@ func (b *Belief) Read(dst *Cloud, space Space, w *Workspace) {
 }
 
 func (b *Belief) readTiles(dst *Cloud) {
+	n := b.occupiedCells()
+	for _, s := range []*[]float64{&dst.East, &dst.North, &dst.Mass, &dst.VarEE, &dst.VarEN, &dst.VarNN} {
+		*s = resize(*s, n)
+	}
 	*dst = Cloud{East: dst.East[:0], North: dst.North[:0], Mass: dst.Mass[:0], VarEE: dst.VarEE[:0], VarEN: dst.VarEN[:0], VarNN: dst.VarNN[:0]}
 	// A cell stands for its square only where the lattice is coarse; where it
 	// is fine, the masses' own variance is the belief's. What changing the

@@ -28,6 +28,8 @@ type Workspace struct {
 	add, f        []float64
 	terms         Terms
 	logs, scratch []float64
+	blunt         []float32 // a lattice's cells: see noiseWork.blunt
+	keep          []bool    // and keepNear
 	tiles         tileSpace
 
 	foretell    *Predictive

@@ -12,9 +12,10 @@ const maxRefinements = 10
 
 // UpdateWithin is Update for a belief on a plane that the measurement may make
 // much sharper than it was: its spacing is first halved until it resolves the
-// posterior as Adapt would have it, within a budget of cells or Gaussians.
-// A sharp posterior does not pay for a wide prior: cells of a lattice to which
-// the measurement leaves nothing are dropped before, and of the Gaussians only
+// posterior as Adapt would have it, within a budget of cells or Gaussians; where
+// modes far apart compete, until it makes the measurement hardly blunt.
+// A sharp posterior does not pay for a wide prior: cells of a lattice far from all
+// to which the measurement leaves anything are dropped before, and of the Gaussians only
 // those are cut that it does not leave faint. A belief on lines, and one that
 // is traced, it updates as Update does.
 //
@@ -32,22 +33,27 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 	plane := space.(PlaneSpace)
 	b.logTiles(plane, l, w)
 	var before *Belief
+	tight := 0.0
 	for range maxRefinements {
 		cells, ok := w.outcome(b.Tiles.Mass, cellFloor)
+		if !ok {
+			break
+		}
 		// scratch holds the posterior's masses, whose scale is asked for.
 		t := Tiles{At: b.Tiles.At, Mass: w.scratch}
-		if !ok || 4*cells > maxCells || t.scale() >= 1/fineScale {
+		scale := t.scale()
+		blunt, twice := w.blunts(&t, cells, scale)
+		tight = 0
+		if twice {
+			tight = square(leastSigma * 2 * b.Lattice.SpacingM)
+		}
+		if 4*cells > maxCells || scale >= 1/fineScale && !blunt {
 			break
 		}
 		if before == nil {
 			before = b.Clone()
 		}
-		for i, q := range w.scratch {
-			if q < cellFloor {
-				b.Pruned += q
-				b.Tiles.Mass[i] = 0
-			}
-		}
+		b.keepNear(w)
 		// Not refine: the prior has been cut off where nothing is left, and
 		// its moments mean nothing there.
 		b.interpolate(&w.tiles)
@@ -57,16 +63,19 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 		b.dropEmptyTiles()
 		b.logTiles(plane, l, w)
 	}
-	if before == nil {
-		return b.weighTiles(w)
+	share := 1.0
+	if before != nil {
+		share = sum(b.Tiles.Mass) / sum(before.Tiles.Mass)
 	}
-	share := sum(b.Tiles.Mass) / sum(before.Tiles.Mass)
 	logEvidence, err = b.weighTiles(w)
-	if err != nil {
-		*b = *before
-		return logEvidence, err
+	if err == nil {
+		b.Tight = tight
+		return logEvidence + kernel.Log(share), nil
 	}
-	return logEvidence + kernel.Log(share), nil
+	if before != nil {
+		*b = *before
+	}
+	return logEvidence, err
 }
 
 // updateGaussians is UpdateWithin for Gaussians.

@@ -34,16 +34,14 @@ func TestSharpMeasurement(t *testing.T) {
 			gain := 1e4 / (1e4 + sigma*sigma)
 			wantVar := sigma * sigma * gain
 			wantE := -0.5*z*z/(1e4+sigma*sigma) - 0.5*math.Log(2*math.Pi*(1e4+sigma*sigma))
-			// h²/12 of a cell of at most 0.4 sigma is added to the noise: 1.3 %
-			// of the posterior's variance at most, where that is the noise's.
-			if math.Abs(m.N-z*gain) > 0.015*math.Sqrt(wantVar)*(1+math.Abs(z)/100) || math.Abs(v[2]/wantVar-1) > 0.014 {
+			if math.Abs(m.N-z*gain) > 0.003*math.Sqrt(wantVar)*(1+math.Abs(z)/100) || math.Abs(v[2]/wantVar-1) > 0.003 {
 				t.Errorf("sigma %g, z %g: mean %.4f, variance %.4f; want %.4f, %.4f (spacing %g)", sigma, z, m.N, v[2], z*gain, wantVar, b.Lattice.SpacingM)
 			}
 			// East is not measured; the interpolations keep it (0.3 % at worst).
 			if math.Abs(v[0]/1e4-1) > 5e-3 || math.Abs(m.E) > 0.1 {
 				t.Errorf("sigma %g, z %g: east %.4f with variance %.1f; want 0 and 10000", sigma, z, m.E, v[0])
 			}
-			if math.Abs(e-wantE) > 0.01*(1+z*z/1e4) {
+			if math.Abs(e-wantE) > 0.003*(1+z*z/1e4) {
 				t.Errorf("sigma %g, z %g: log evidence %.5f, want %.5f", sigma, z, e, wantE)
 			}
 			if h := b.Lattice.SpacingM; h > 0.41*math.Sqrt(wantVar) || b.Cells() > budget || math.Abs(mass(b)-1) > 1e-12 {

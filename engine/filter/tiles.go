@@ -2,6 +2,7 @@ package filter
 
 import (
 	"cmp"
+	"math"
 	"slices"
 
 	"leadline/engine/geo"
@@ -60,6 +61,7 @@ func (b *Belief) predictTiles(step Step, w *Workspace) {
 	q := [3]float64{step.Q[0] - s[0], step.Q[1] - s[1], step.Q[2] - s[2]}
 	// Where the lattice is already wider than it should be, owe the less.
 	p := spreadable(q)
+	b.Tight = math.Max(0, b.Tight-math.Min(p[0], p[2]))
 	*s = [3]float64{p[0] - q[0], p[1] - q[1], p[2] - q[2]}
 	h2 := b.Lattice.SpacingM * b.Lattice.SpacingM
 	u, lambda, n := directions(p[0]/h2, p[1]/h2, p[2]/h2)

@@ -18,8 +18,7 @@ var ErrContradiction = errors.New("filter: the measurement is impossible everywh
 // is used as the latter.
 //
 // Where a belief is a lattice without quantities, a linear likelihood is
-// evaluated at the cells' centres, with the variance of its residual over a
-// cell, |row|²h²/12, added to the noise.
+// evaluated at its points, no sharper than the lattice can show (leastSigma).
 func Update(b *Belief, space Space, l any, w *Workspace) (logEvidence float64, err error) {
 	if b.Map != space.Fingerprint() {
 		panic("filter: the belief was seeded over another map")

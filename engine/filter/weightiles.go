@@ -18,7 +18,8 @@ func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 	w.logs = resize(w.logs, len(t.Mass))
 	clear(w.logs)
 	h := b.Lattice.SpacingM
-	within := h * h / 12
+	least := square(leastSigma * h)
+	w.blunt = w.blunt[:0]
 	var nw noiseWork
 	var noise Noise
 	lin, linear := l.(LinearLikelihood)
@@ -29,6 +30,7 @@ func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 		noise = lin.Noise()
 		nw = newNoiseWork(&noise, lin.Rows())
 		wants |= lin.Wants()
+		w.blunt = resize(w.blunt, len(t.Mass))
 	case plain:
 		wants |= like.Wants()
 	default:
@@ -53,9 +55,10 @@ func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 			if mass == 0 {
 				continue
 			}
-			logs[x] = nw.density(&w.terms, x, within)
+			logs[x] = nw.density(&w.terms, x, least)
+			w.blunt[i*tileCells+x] = nw.blunt(&w.terms, x, least)
 			if p != nil {
-				w.predictions.add(mass, &w.terms, x, m, w.terms.withinCell(x, m, within), &w.at, turned)
+				w.predictions.add(mass, &w.terms, x, m, w.terms.ofPosition(x, m, h*h/12), &w.at, turned)
 			}
 		}
 	}
@@ -104,9 +107,9 @@ func (l Lattice) points(at *Columns, t TileAt) {
 	}
 }
 
-// withinCell is the variance of what the rows take of a position at i that has
+// ofPosition is the variance of what the rows take of a position at i that has
 // the variance within along each axis.
-func (t *Terms) withinCell(i, m int, within float64) sym2 {
+func (t *Terms) ofPosition(i, m int, within float64) sym2 {
 	row := t.Row[i*m*2 : (i+1)*m*2]
 	p := sym2{a: float64(within * (float64(row[0]*row[0]) + float64(row[1]*row[1])))}
 	if m == 2 {
@@ -116,24 +119,43 @@ func (t *Terms) withinCell(i, m int, within float64) sym2 {
 	return p
 }
 
-// density returns the log likelihood at a lattice cell whose position has the
-// variance within along each axis.
-func (w *noiseWork) density(t *Terms, i int, within float64) float64 {
+// leastSigma is the least standard deviation that a measurement has on a lattice,
+// in cells: sharper ones are made as blunt as that. The sum over points of a
+// density so wide differs from its integral by at most 2·exp(-2π²·leastSigma²) of
+// it, 1.4 % (Poisson's summation formula); a sharper one would be seen or missed
+// as the points happen to lie. What is blunter is taken at the points as it is,
+// without a variance for the cell: a lattice's masses have the belief's own.
+const leastSigma = 0.5
+
+// blunt is the variance of a measurement on a lattice over that of the first part
+// of its noise, along the first row: above 1 the lattice adds to it.
+func (w *noiseWork) blunt(t *Terms, i int, least float64) float32 {
+	if flat := t.Flat[i]; flat == flat {
+		return 0
+	}
+	row := t.Row[i*w.m*2 : (i+1)*w.m*2]
+	g := float64(row[0]*row[0]) + float64(row[1]*row[1])
+	return float32(float64(least*g) * w.power / w.noise(0, t.Extra[i]).a)
+}
+
+// density returns the log likelihood at a point of a lattice, on which no
+// measurement is sharper than the variance least along each axis.
+func (w *noiseWork) density(t *Terms, i int, least float64) float64 {
 	if flat := t.Flat[i]; flat == flat {
 		return float64(w.power * flat)
 	}
 	m := w.m
 	var r [2]float64
 	copy(r[:], t.Residual[i*m:(i+1)*m])
-	p := t.withinCell(i, m, within)
+	p := t.ofPosition(i, m, least)
 	if len(w.parts) == 1 && math.IsInf(w.logFlat, -1) {
-		log, _ := w.part(0, p, r, t.Extra[i])
+		log, _ := w.part(0, w.short(0, p, t.Extra[i]), r, t.Extra[i])
 		return float64(w.power*w.logW[0]) + log
 	}
 	var logs [maxParts]float64
 	most := w.logFlat
 	for c := range w.parts {
-		l, _ := w.part(c, p, r, t.ExtraOf(i, c))
+		l, _ := w.part(c, w.short(c, p, t.ExtraOf(i, c)), r, t.ExtraOf(i, c))
 		logs[c] = w.logW[c] + l/w.power
 		most = math.Max(most, logs[c])
 	}
@@ -145,4 +167,25 @@ func (w *noiseWork) density(t *Terms, i int, within float64) float64 {
 		sum += kernel.Exp(logs[c] - most)
 	}
 	return float64(w.power * (most + kernel.Log(sum)))
+}
+
+// short returns the least variance that makes the noise of part c as wide as a
+// covariance along every direction.
+func (w *noiseWork) short(c int, least sym2, extra float64) sym2 {
+	n := w.noise(c, extra)
+	if w.m == 1 {
+		return sym2{a: math.Max(0, least.a-n.a/w.power)}
+	}
+	d := sym2{least.a - n.a/w.power, least.b - n.b/w.power, least.c - n.c/w.power}
+	mid, half := 0.5*(d.a+d.c), 0.5*(d.a-d.c)
+	r := math.Sqrt(float64(half*half) + float64(d.b*d.b))
+	switch {
+	case mid+r <= 0:
+		return sym2{}
+	case mid-r >= 0:
+		return d
+	}
+	// The positive eigenvalue times its projection, (d - (mid - r)·1)/2r.
+	x := (mid + r) / (2 * r)
+	return sym2{float64(x * (d.a - mid + r)), float64(x * d.b), float64(x * (d.c - mid + r))}
 }
