@@ -97,14 +97,17 @@ type predictions struct {
 	extra, wide []float64
 	axes        [][2]geo.Point // empty unless Turned
 	total       float64        // mass, with that which is not predicted
+	// least says that variance is not added to the noise but the least it has.
+	least bool
 }
 
 func (q *predictions) reset() {
 	q.mass, q.residual, q.variance = q.mass[:0], q.residual[:0], q.variance[:0]
-	q.extra, q.wide, q.axes, q.total = q.extra[:0], q.wide[:0], q.axes[:0], 0
+	q.extra, q.wide, q.axes, q.total, q.least = q.extra[:0], q.wide[:0], q.axes[:0], 0, false
 }
 
-// add keeps what position i of the terms predicts; p is the variance of g(x).
+// add keeps what position i of the terms predicts; p is the variance of g(x), or
+// the least that the noise has.
 func (q *predictions) add(mass float64, t *Terms, i, m int, p sym2, at *Columns, turned Turned) {
 	q.total += mass
 	if flat := t.Flat[i]; flat == flat || mass == 0 {
@@ -150,7 +153,7 @@ func (q *predictions) into(p *Predictive, noise *Noise, m int, circular bool) {
 			r = [2]float64{float64(turn[0].E*r[0]) + float64(turn[1].E*r[1]), float64(turn[0].N*r[0]) + float64(turn[1].N*r[1])}
 		}
 		for c := range noise.Parts {
-			s, weight := q.spread(i, c, noise), mass*noise.Parts[c].Weight
+			s, weight := q.spread(i, c, m, noise), mass*noise.Parts[c].Weight
 			if m == 1 {
 				sum[0].add(weight, normalTails((r[0]-noise.Parts[c].Mean)/math.Sqrt(s.a)))
 				continue
@@ -184,11 +187,15 @@ func (q *predictions) into(p *Predictive, noise *Noise, m int, circular bool) {
 	}
 }
 
-// spread is the covariance of what entry i predicts by part c of the noise.
-func (q *predictions) spread(i, c int, n *Noise) sym2 {
+// spread is the covariance of what entry i predicts by part c of the noise, of m
+// components.
+func (q *predictions) spread(i, c, m int, n *Noise) sym2 {
 	p, cov, extra := q.variance[i], &n.Parts[c].Cov, q.extra[i]
 	if c > 0 {
 		extra = q.wide[i]
+	}
+	if q.least {
+		p = sym2{cov[0] + extra, cov[1], cov[2] + extra}.short(m, p)
 	}
 	return sym2{p.a + cov[0] + extra, p.b + cov[1], p.c + cov[2] + extra}
 }
@@ -211,7 +218,7 @@ func (q *predictions) circle(i int, n *Noise, heaviest float64) (t tails) {
 	r := q.residual[i][0]
 	t.add(n.FlatWeight, tails{arc / (2 * math.Pi), 1 - arc/(2*math.Pi)})
 	for c, part := range n.Parts {
-		s := math.Sqrt(q.spread(i, c, n).a)
+		s := math.Sqrt(q.spread(i, c, 1, n).a)
 		var sum tails
 		for turn := -1.0; turn <= 1; turn++ {
 			to := r + turn*2*math.Pi

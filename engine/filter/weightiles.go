@@ -39,6 +39,7 @@ func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 	p := w.asked()
 	turned, _ := l.(Turned)
 	w.predictions.reset()
+	w.predictions.least = true
 	for i := range t.At {
 		logs := w.logs[i*tileCells : (i+1)*tileCells]
 		w.at.Resize(wants, 2, tileCells)
@@ -58,7 +59,7 @@ func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 			logs[x] = nw.density(&w.terms, x, least)
 			w.blunt[i*tileCells+x] = nw.blunt(&w.terms, x, least)
 			if p != nil {
-				w.predictions.add(mass, &w.terms, x, m, w.terms.ofPosition(x, m, h*h/12), &w.at, turned)
+				w.predictions.add(mass, &w.terms, x, m, w.terms.ofPosition(x, m, least), &w.at, turned)
 			}
 		}
 	}
@@ -173,10 +174,16 @@ func (w *noiseWork) density(t *Terms, i int, least float64) float64 {
 // covariance along every direction.
 func (w *noiseWork) short(c int, least sym2, extra float64) sym2 {
 	n := w.noise(c, extra)
-	if w.m == 1 {
-		return sym2{a: math.Max(0, least.a-n.a/w.power)}
+	return sym2{n.a / w.power, n.b / w.power, n.c / w.power}.short(w.m, least)
+}
+
+// short returns the least covariance that makes s as wide as another one along
+// every direction.
+func (s sym2) short(m int, least sym2) sym2 {
+	if m == 1 {
+		return sym2{a: math.Max(0, least.a-s.a)}
 	}
-	d := sym2{least.a - n.a/w.power, least.b - n.b/w.power, least.c - n.c/w.power}
+	d := sym2{least.a - s.a, least.b - s.b, least.c - s.c}
 	mid, half := 0.5*(d.a+d.c), 0.5*(d.a-d.c)
 	r := math.Sqrt(float64(half*half) + float64(d.b*d.b))
 	switch {
