@@ -84,9 +84,35 @@ func printPosterior(w io.Writer, p *leadlinev1.Posterior) {
 	}
 	n := p.GetCounts()
 	line("measurements", "%d accepted, %d refused; log evidence %.1f", n.GetAccepted(), n.GetRefused(), p.GetLogEvidence())
+	for _, a := range p.GetAlarms() {
+		line("alarm", "%s", alarmText(a))
+	}
 	if p.GetGapS() > 0 {
 		line("gap", "nothing measured the motion for %.1f s", p.GetGapS())
 	}
+}
+
+// alarmText words an alarm.
+func alarmText(a *leadlinev1.Alarm) string {
+	who := "all measurements together"
+	if a.GetSensor() != "" {
+		who = a.GetSensor()
+		if a.GetPost() != "" {
+			who += " at " + a.GetPost()
+		}
+		who += " (" + a.GetMeasurementKind() + ")"
+	}
+	what := map[leadlinev1.AlarmKind]string{
+		leadlinev1.AlarmKind_ALARM_KIND_SPREAD:     "err more than stated",
+		leadlinev1.AlarmKind_ALARM_KIND_BIAS:       "err to one side",
+		leadlinev1.AlarmKind_ALARM_KIND_IMPOSSIBLE: "sent what is impossible everywhere",
+		leadlinev1.AlarmKind_ALARM_KIND_ISOLATED:   "isolated: tried, and not used until they agree again",
+	}[a.GetKind()]
+	text := fmt.Sprintf("%s: %s, since %s", who, what, a.GetSince().AsTime().Format(time.RFC3339))
+	if a.Evidence != nil {
+		text += fmt.Sprintf(" (%.1f nats)", a.GetEvidence())
+	}
+	return text
 }
 
 // age words how old an answer is, by the server's clock.

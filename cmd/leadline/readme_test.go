@@ -209,6 +209,7 @@ func TestReadmeDefaults(t *testing.T) {
 	number := func(v float64) string { return strconv.FormatFloat(v, 'g', -1, 64) }
 	for _, c := range []struct{ key, says string }{
 		{"alert_limit_m", number(roads.AlertLimitM) + " on roads, " + number(plane.AlertLimitM) + " on height maps |"},
+		{"false_alarm_h", "| " + number(roads.FalseAlarmH) + " |"},
 		{"late_window_s", "| " + number(roads.LateWindowS) + " |"},
 		{"hold_s", "| " + number(roads.HoldS) + " |"},
 		{"lateral_sigma_m", "| " + number(roads.LateralSigmaM) + "; roads only |"},

@@ -30,6 +30,23 @@ func Update(b *Belief, space Space, l any, w *Workspace) (logEvidence float64, e
 	return b.settle(l, w)
 }
 
+// Try returns the log evidence that Update would, and leaves the belief as it
+// is.
+func Try(b *Belief, space Space, l any, w *Workspace) (logEvidence float64, err error) {
+	if b.Map != space.Fingerprint() {
+		panic("filter: the belief was seeded over another map")
+	}
+	mass := b.Mass
+	if len(b.Quantities) == 0 {
+		b.logTiles(space.(PlaneSpace), l, w)
+		mass = b.Tiles.Mass
+	} else {
+		b.condition(space, l, w)
+	}
+	w.scratch = append(w.scratch[:0], mass...)
+	return weigh(w.scratch, w.logs)
+}
+
 // condition writes the log likelihood of every Gaussian into w.logs and, of a
 // linear likelihood, the Gaussians after it into w.out, entry by entry. The
 // belief stays as it is, so that a contradiction leaves it alone.

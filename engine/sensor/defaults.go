@@ -45,6 +45,9 @@ func (d Sensor) correlation() float64 {
 	return correlationDefault(d.Kind)
 }
 
+// CorrelationS is how long an error of the sensor lasts, s.
+func (s *Suite) CorrelationS(name, kind string) float64 { return s.Sensor(name, kind).correlation() }
+
 func (d Sensor) maxRange() float64 {
 	if d.MaxRangeM != 0 {
 		return d.MaxRangeM

@@ -27,6 +27,11 @@ type Vehicle struct {
 	// starts on a whole town has dropped up to 1e-6 of its mass by the time it
 	// is located (measured) and may not have dropped a tenth of the risk.
 	IntegrityRisk float64 `yaml:"integrity_risk"`
+	// FalseAlarmH is for how many hours, on average, no sensor and not all of
+	// them together raise a false alarm: 1000 h unless said (practice: with ten
+	// sensors one in some four days of driving; ln 10 = 2.3 nats more or less of
+	// threshold change it tenfold).
+	FalseAlarmH float64 `yaml:"false_alarm_h"`
 	// LateWindowS is how late an event may come and still be replayed, 2 s
 	// unless said.
 	LateWindowS float64 `yaml:"late_window_s"`
@@ -213,6 +218,7 @@ func (s *Suite) For(dim int) *Suite {
 	v := &c.Vehicle
 	or(&v.AlertLimitM, 25, 556)
 	or(&v.IntegrityRisk, 1e-4, 1e-7)
+	or(&v.FalseAlarmH, 1000, 1000)
 	or(&v.LateWindowS, 2, 2)
 	or(&v.HoldS, 1, 1)
 	or(&v.LateralSigmaM, 2.5, 0)

@@ -59,6 +59,7 @@ func (s *Suite) problems() []Finding {
 	v := s.Vehicle
 	f.unless0("vehicle.alert_limit_m", v.AlertLimitM, 0.01, 1e6)
 	f.unless0("vehicle.integrity_risk", v.IntegrityRisk, 1e-12, 0.01)
+	f.unless0("vehicle.false_alarm_h", v.FalseAlarmH, 0.01, 1e5)
 	f.unless0("vehicle.late_window_s", v.LateWindowS, 1e-3, 3600)
 	f.unless0("vehicle.hold_s", v.HoldS, 1e-3, 3600)
 	f.unless0("vehicle.lateral_sigma_m", v.LateralSigmaM, 1e-3, 100)

@@ -83,8 +83,10 @@ func message(p *summary.Posterior, vehicle string, m Map, now time.Time) *leadli
 	for _, e := range p.Evidence {
 		out.Evidence = append(out.Evidence, &leadlinev1.Evidence{
 			Sensor: e.Sensor, Number: e.Number, Kind: e.Kind, LogEvidence: e.LogEvidence,
+			Withheld: e.Withheld,
 		})
 	}
+	monitored(out, p)
 	return out
 }
 

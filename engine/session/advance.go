@@ -1,7 +1,6 @@
 package session
 
 import (
-	"errors"
 	"fmt"
 	"math"
 
@@ -157,22 +156,6 @@ func (s *Session) step(t sensor.Time, end int) *summary.Posterior {
 	}
 	s.snapshot()
 	return p
-}
-
-// weigh updates the belief by one likelihood of an event. One that is
-// impossible everywhere leaves the belief and the running sum as they were.
-func (s *Session) weigh(ev sensor.Event, l any) {
-	st := &s.state
-	e, err := filter.UpdateWithin(st.belief, s.space, l, s.maxCells, &s.work)
-	if errors.Is(err, filter.ErrContradiction) {
-		e = math.Inf(-1)
-	}
-	e = s.weighAside(ev, l, sensor.IsMotion(ev.Measurement.Kind()), e)
-	if !math.IsInf(e, -1) {
-		st.logEvidence += e
-	}
-	st.record(summary.Evidence{Sensor: ev.Sensor, Number: ev.Number, Kind: ev.Measurement.Kind(), LogEvidence: e})
-	s.watched(Change{Time: ev.Time, Event: ev, Likelihood: l, LogEvidence: e})
 }
 
 // context is what a likelihood of ev needs to know.

@@ -40,6 +40,7 @@ func (s *Session) read(sum *summary.Summarizer, dst *summary.Posterior) error {
 		TimeNS: int64(st.time), Frame: s.space.Frame(), Belief: b, Cloud: &s.cloud,
 		Speed: st.speed, Evidence: st.evidence, LogEvidence: st.logEvidence,
 		Accepted: st.processed, Refused: s.refused, RestartMass: b.Restarted,
+		Contradicted: st.monitor.Contradicted(), Alarms: st.monitor.Alarms(), Sensors: st.monitor.Sensors(),
 		Off: s.offMap(), Lost: st.aside.lost,
 	}
 	if p, ok := s.space.(filter.PlaneSpace); ok {

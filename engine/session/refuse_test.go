@@ -2,12 +2,15 @@ package session
 
 import (
 	"math"
+	"reflect"
 	"strings"
 	"testing"
 
 	"leadline/engine/geo"
+	"leadline/engine/monitor"
 	"leadline/engine/plane"
 	"leadline/engine/sensor"
+	"leadline/engine/summary"
 )
 
 // TestRefusals proves that each wrong event has its reason and one line that
@@ -226,11 +229,23 @@ func TestContradiction(t *testing.T) {
 			if !(p.LogEvidence < 0) || math.IsInf(p.LogEvidence, 0) {
 				t.Errorf("running evidence %v", p.LogEvidence)
 			}
+			if p.Status != summary.Contradicted || len(p.Alarms) != 1 || p.Alarms[0].Kind != monitor.Impossible || p.Alarms[0].Key.Sensor != "who" {
+				t.Errorf("status %v, alarms %+v", p.Status, p.Alarms)
+			}
 			with.Flush()
 			without.Flush()
-			sameState(t, without, with)
+			if !reflect.DeepEqual(with.state.belief, without.state.belief) || with.state.logEvidence != without.state.logEvidence {
+				t.Error("the belief or its running evidence is another one")
+			}
 			if len(with.Latest().Evidence) != 1 || with.Latest().LogEvidence == p.LogEvidence {
 				t.Errorf("what followed was not taken: %+v", with.Latest().Evidence)
+			}
+			for i := 4; i < 14; i++ { // 0 s to 13 s: ten since, for 12 s
+				mustAdd(t, with, fix(float64(i)))
+			}
+			with.Flush()
+			if got := with.Latest(); got.Status == summary.Contradicted || len(got.Alarms) > 0 {
+				t.Errorf("ten measurements later: status %v, alarms %+v", got.Status, got.Alarms)
 			}
 		})
 	}

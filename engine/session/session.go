@@ -8,6 +8,7 @@ import (
 
 	"leadline/engine/filter"
 	"leadline/engine/geo"
+	"leadline/engine/monitor"
 	"leadline/engine/sensor"
 	"leadline/engine/summary"
 )
@@ -220,6 +221,7 @@ func New(c Config) (*Session, error) {
 		return nil, err
 	}
 	s.state.belief = b
+	s.state.monitor = monitor.New(v.FalseAlarmH * 3600)
 	s.setRates()
 	return s, nil
 }

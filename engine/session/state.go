@@ -4,6 +4,7 @@ import (
 	"slices"
 
 	"leadline/engine/filter"
+	"leadline/engine/monitor"
 	"leadline/engine/sensor"
 	"leadline/engine/summary"
 )
@@ -33,6 +34,7 @@ type state struct {
 	// previous holds the last processed event of each voice, in order.
 	previous  []lastEvent
 	processed uint64 // events
+	monitor   *monitor.Monitor
 	aside     aside
 }
 
@@ -49,6 +51,7 @@ func (st *state) clone() state {
 	c.previous = slices.Clone(st.previous)
 	c.evidence = slices.Clone(st.evidence)
 	c.pace.stretches = slices.Clone(st.pace.stretches)
+	c.monitor = st.monitor.Clone()
 	return c
 }
 

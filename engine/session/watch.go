@@ -20,6 +20,8 @@ type Change struct {
 	// LogEvidence is -Inf where the event is impossible everywhere in the
 	// belief, which it then left alone.
 	LogEvidence float64
+	// Fell is where it fell in what was expected, if the monitor looked at it.
+	Fell filter.Predictive
 }
 
 // Watch has f called after each move and each weighing of the belief, as they

@@ -7,6 +7,7 @@ import (
 
 	"leadline/engine/filter"
 	"leadline/engine/geo"
+	"leadline/engine/monitor"
 )
 
 // ErrEmpty is returned by Summarize for a belief that holds no probability.
@@ -41,6 +42,8 @@ type Input struct {
 	RestartMass float64 // given to hypotheses that the belief had not followed
 	// What monitors say.
 	Contradicted bool
+	Alarms       []monitor.Alarm
+	Sensors      []monitor.Consistency
 	// Off is what is known of a vehicle that is off the map, nil for nothing;
 	// Lost is the probability that the vehicle is where neither it nor the
 	// belief says. The belief has what is left of 1.

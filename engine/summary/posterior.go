@@ -4,6 +4,7 @@ import (
 	"math"
 
 	"leadline/engine/geo"
+	"leadline/engine/monitor"
 )
 
 // Posterior is what goes out. Directions in it are clockwise from true north
@@ -61,6 +62,11 @@ type Posterior struct {
 	Evidence    []Evidence
 	LogEvidence float64
 	Counts      Counts
+
+	// Alarms are those that hold; Sensors say how the measurements of each
+	// sensor agree with what was expected of them.
+	Alarms  []monitor.Alarm
+	Sensors []monitor.Consistency
 
 	// GapS is for how long, of the time since the posterior before, nothing
 	// measured the motion. Revises says that this posterior takes the place
@@ -175,6 +181,8 @@ type Evidence struct {
 	Number      uint64
 	Kind        string
 	LogEvidence float64
+	// Withheld says that the measurement was only tried: its sensor is isolated.
+	Withheld bool
 }
 
 // Counts of a session so far: measurements accepted and refused, and

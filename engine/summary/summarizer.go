@@ -98,6 +98,7 @@ func (s *Summarizer) Summarize(dst *Posterior, in *Input) error {
 	dst.Speed = in.Speed
 	dst.Evidence = append(dst.Evidence[:0], in.Evidence...)
 	dst.LogEvidence = in.LogEvidence
+	dst.Alarms, dst.Sensors = in.Alarms, in.Sensors
 	dst.Counts = Counts{in.Accepted, in.Refused, in.Belief.Pruned, in.Belief.LeftMap, in.RestartMass}
 
 	s.quantities(dst, in)

@@ -7,6 +7,7 @@ import (
 
 	"leadline/engine/filter"
 	"leadline/engine/geo"
+	"leadline/engine/monitor"
 	"leadline/engine/sensor"
 	"leadline/engine/session"
 	"leadline/engine/study/replay"
@@ -52,7 +53,15 @@ func Look(res *replay.Result, record *Record, truth []score.Truth, events []sens
 	f := &Findings{Reasons: []string{}, Fits: record.fits(math.MinInt64), Beyond: []Beyond{}}
 	say := func(format string, args ...any) { f.Reasons = append(f.Reasons, fmt.Sprintf(format, args...)) }
 	contradicted, located, first := 0, 0, 0.0
+	var isolated []string
+	seen := map[monitor.Key]bool{}
 	for _, p := range res.Posteriors {
+		for _, a := range p.Alarms {
+			if a.Kind == monitor.Isolated && !seen[a.Key] {
+				seen[a.Key] = true
+				isolated = append(isolated, fmt.Sprintf("%s (%s) disagrees with the others and is isolated from %.0f s after the start on", a.Key.Sensor, a.Key.Kind, sensor.Time(a.RaisedNS).Seconds(res.Start)))
+			}
+		}
 		switch p.Status {
 		case summary.Contradicted:
 			if contradicted++; contradicted == 1 {
@@ -65,6 +74,7 @@ func Look(res *replay.Result, record *Record, truth []score.Truth, events []sens
 	if contradicted > 0 {
 		say("it is contradicted %.0f s after the start", first)
 	}
+	f.Reasons = append(f.Reasons, isolated...)
 	if located == 0 {
 		say("it is never located")
 	}

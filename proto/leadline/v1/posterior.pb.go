@@ -88,6 +88,67 @@ func (Status) EnumDescriptor() ([]byte, []int) {
 	return file_leadline_v1_posterior_proto_rawDescGZIP(), []int{0}
 }
 
+// AlarmKind says what an alarm is about.
+type AlarmKind int32
+
+const (
+	AlarmKind_ALARM_KIND_UNSPECIFIED AlarmKind = 0
+	// Errors are larger than stated.
+	AlarmKind_ALARM_KIND_SPREAD AlarmKind = 1
+	// Errors are not about zero.
+	AlarmKind_ALARM_KIND_BIAS AlarmKind = 2
+	// A measurement was impossible everywhere in the belief.
+	AlarmKind_ALARM_KIND_IMPOSSIBLE AlarmKind = 3
+	// A sensor that disagreed for long while others agreed: its measurements are
+	// tried, and not used until they agree again.
+	AlarmKind_ALARM_KIND_ISOLATED AlarmKind = 4
+)
+
+// Enum value maps for AlarmKind.
+var (
+	AlarmKind_name = map[int32]string{
+		0: "ALARM_KIND_UNSPECIFIED",
+		1: "ALARM_KIND_SPREAD",
+		2: "ALARM_KIND_BIAS",
+		3: "ALARM_KIND_IMPOSSIBLE",
+		4: "ALARM_KIND_ISOLATED",
+	}
+	AlarmKind_value = map[string]int32{
+		"ALARM_KIND_UNSPECIFIED": 0,
+		"ALARM_KIND_SPREAD":      1,
+		"ALARM_KIND_BIAS":        2,
+		"ALARM_KIND_IMPOSSIBLE":  3,
+		"ALARM_KIND_ISOLATED":    4,
+	}
+)
+
+func (x AlarmKind) Enum() *AlarmKind {
+	p := new(AlarmKind)
+	*p = x
+	return p
+}
+
+func (x AlarmKind) String() string {
+	return protoimpl.X.EnumStringOf(x.Descriptor(), protoreflect.EnumNumber(x))
+}
+
+func (AlarmKind) Descriptor() protoreflect.EnumDescriptor {
+	return file_leadline_v1_posterior_proto_enumTypes[1].Descriptor()
+}
+
+func (AlarmKind) Type() protoreflect.EnumType {
+	return &file_leadline_v1_posterior_proto_enumTypes[1]
+}
+
+func (x AlarmKind) Number() protoreflect.EnumNumber {
+	return protoreflect.EnumNumber(x)
+}
+
+// Deprecated: Use AlarmKind.Descriptor instead.
+func (AlarmKind) EnumDescriptor() ([]byte, []int) {
+	return file_leadline_v1_posterior_proto_rawDescGZIP(), []int{1}
+}
+
 // Posterior is what is known of a vehicle's position at one time, given the
 // measurements accepted up to then.
 type Posterior struct {
@@ -162,6 +223,10 @@ type Posterior struct {
 	// The fingerprint of a newer map of the same name; empty if there is none.
 	// The drive keeps the one it was opened with.
 	NewerMapFingerprint string `protobuf:"bytes,32,opt,name=newer_map_fingerprint,json=newerMapFingerprint,proto3" json:"newer_map_fingerprint,omitempty"`
+	// The alarms that hold: of all sensors together first, then by sensor.
+	Alarms []*Alarm `protobuf:"bytes,33,rep,name=alarms,proto3" json:"alarms,omitempty"`
+	// How the measurements of each sensor agree with what was expected of them.
+	Consistency []*Consistency `protobuf:"bytes,34,rep,name=consistency,proto3" json:"consistency,omitempty"`
 	// Probability that the vehicle is off the map, where its position is part of
 	// mean, covariance, radii, modes, regions and protection.
 	OffMap float64 `protobuf:"fixed64,35,opt,name=off_map,json=offMap,proto3" json:"off_map,omitempty"`
@@ -427,6 +492,20 @@ func (x *Posterior) GetNewerMapFingerprint() string {
 		return x.NewerMapFingerprint
 	}
 	return ""
+}
+
+func (x *Posterior) GetAlarms() []*Alarm {
+	if x != nil {
+		return x.Alarms
+	}
+	return nil
+}
+
+func (x *Posterior) GetConsistency() []*Consistency {
+	if x != nil {
+		return x.Consistency
+	}
+	return nil
 }
 
 func (x *Posterior) GetOffMap() float64 {
@@ -1089,7 +1168,9 @@ type Evidence struct {
 	Kind string `protobuf:"bytes,3,opt,name=kind,proto3" json:"kind,omitempty"`
 	// ln p(measurement | those before it), nats; density in the measurement's
 	// own unit, angles per radian.
-	LogEvidence   float64 `protobuf:"fixed64,4,opt,name=log_evidence,json=logEvidence,proto3" json:"log_evidence,omitempty"`
+	LogEvidence float64 `protobuf:"fixed64,4,opt,name=log_evidence,json=logEvidence,proto3" json:"log_evidence,omitempty"`
+	// It was tried and not used: its sensor is isolated. It is not in the sum.
+	Withheld      bool `protobuf:"varint,5,opt,name=withheld,proto3" json:"withheld,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -1152,6 +1233,225 @@ func (x *Evidence) GetLogEvidence() float64 {
 	return 0
 }
 
+func (x *Evidence) GetWithheld() bool {
+	if x != nil {
+		return x.Withheld
+	}
+	return false
+}
+
+// Alarm is raised where measurements speak against what is expected of them,
+// and ends when as much has spoken for it.
+type Alarm struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	Kind  AlarmKind              `protobuf:"varint,1,opt,name=kind,proto3,enum=leadline.v1.AlarmKind" json:"kind,omitempty"`
+	// The sensor; empty for all together, which contradict the belief.
+	Sensor string `protobuf:"bytes,2,opt,name=sensor,proto3" json:"sensor,omitempty"`
+	// The kind of its measurements, as in Measurement, and of bearings from posts
+	// the post.
+	MeasurementKind string `protobuf:"bytes,3,opt,name=measurement_kind,json=measurementKind,proto3" json:"measurement_kind,omitempty"`
+	Post            string `protobuf:"bytes,4,opt,name=post,proto3" json:"post,omitempty"`
+	// When it was raised, UTC.
+	Raised *timestamppb.Timestamp `protobuf:"bytes,5,opt,name=raised,proto3" json:"raised,omitempty"`
+	// Since when there has been evidence of it, UTC.
+	Since *timestamppb.Timestamp `protobuf:"bytes,6,opt,name=since,proto3" json:"since,omitempty"`
+	// How much more probable the measurements since then are under the alarm than
+	// as they should be, nats, at most threshold. Neither is set where a
+	// measurement was impossible.
+	Evidence *float64 `protobuf:"fixed64,7,opt,name=evidence,proto3,oneof" json:"evidence,omitempty"`
+	// From how much evidence on it is raised, nats.
+	Threshold     *float64 `protobuf:"fixed64,8,opt,name=threshold,proto3,oneof" json:"threshold,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Alarm) Reset() {
+	*x = Alarm{}
+	mi := &file_leadline_v1_posterior_proto_msgTypes[11]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Alarm) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Alarm) ProtoMessage() {}
+
+func (x *Alarm) ProtoReflect() protoreflect.Message {
+	mi := &file_leadline_v1_posterior_proto_msgTypes[11]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Alarm.ProtoReflect.Descriptor instead.
+func (*Alarm) Descriptor() ([]byte, []int) {
+	return file_leadline_v1_posterior_proto_rawDescGZIP(), []int{11}
+}
+
+func (x *Alarm) GetKind() AlarmKind {
+	if x != nil {
+		return x.Kind
+	}
+	return AlarmKind_ALARM_KIND_UNSPECIFIED
+}
+
+func (x *Alarm) GetSensor() string {
+	if x != nil {
+		return x.Sensor
+	}
+	return ""
+}
+
+func (x *Alarm) GetMeasurementKind() string {
+	if x != nil {
+		return x.MeasurementKind
+	}
+	return ""
+}
+
+func (x *Alarm) GetPost() string {
+	if x != nil {
+		return x.Post
+	}
+	return ""
+}
+
+func (x *Alarm) GetRaised() *timestamppb.Timestamp {
+	if x != nil {
+		return x.Raised
+	}
+	return nil
+}
+
+func (x *Alarm) GetSince() *timestamppb.Timestamp {
+	if x != nil {
+		return x.Since
+	}
+	return nil
+}
+
+func (x *Alarm) GetEvidence() float64 {
+	if x != nil && x.Evidence != nil {
+		return *x.Evidence
+	}
+	return 0
+}
+
+func (x *Alarm) GetThreshold() float64 {
+	if x != nil && x.Threshold != nil {
+		return *x.Threshold
+	}
+	return 0
+}
+
+// Consistency is how a sensor's measurements agree with what was expected of
+// them, by normal scores: mean 0 and mean square 1 if all is as stated.
+type Consistency struct {
+	state  protoimpl.MessageState `protogen:"open.v1"`
+	Sensor string                 `protobuf:"bytes,1,opt,name=sensor,proto3" json:"sensor,omitempty"`
+	// The kind of its measurements, as in Measurement, and of bearings from posts
+	// the post.
+	MeasurementKind string `protobuf:"bytes,2,opt,name=measurement_kind,json=measurementKind,proto3" json:"measurement_kind,omitempty"`
+	Post            string `protobuf:"bytes,3,opt,name=post,proto3" json:"post,omitempty"`
+	// How many were compared since the start: not those that share their errors
+	// with the one before.
+	Compared uint64 `protobuf:"varint,4,opt,name=compared,proto3" json:"compared,omitempty"`
+	// Mean of the scores, the latest 60 or so counting most.
+	ScoreMean float64 `protobuf:"fixed64,5,opt,name=score_mean,json=scoreMean,proto3" json:"score_mean,omitempty"`
+	// Their mean square.
+	ScoreMeanSquare float64 `protobuf:"fixed64,6,opt,name=score_mean_square,json=scoreMeanSquare,proto3" json:"score_mean_square,omitempty"`
+	// Its measurements are tried and not used.
+	Isolated      bool `protobuf:"varint,7,opt,name=isolated,proto3" json:"isolated,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Consistency) Reset() {
+	*x = Consistency{}
+	mi := &file_leadline_v1_posterior_proto_msgTypes[12]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Consistency) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Consistency) ProtoMessage() {}
+
+func (x *Consistency) ProtoReflect() protoreflect.Message {
+	mi := &file_leadline_v1_posterior_proto_msgTypes[12]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Consistency.ProtoReflect.Descriptor instead.
+func (*Consistency) Descriptor() ([]byte, []int) {
+	return file_leadline_v1_posterior_proto_rawDescGZIP(), []int{12}
+}
+
+func (x *Consistency) GetSensor() string {
+	if x != nil {
+		return x.Sensor
+	}
+	return ""
+}
+
+func (x *Consistency) GetMeasurementKind() string {
+	if x != nil {
+		return x.MeasurementKind
+	}
+	return ""
+}
+
+func (x *Consistency) GetPost() string {
+	if x != nil {
+		return x.Post
+	}
+	return ""
+}
+
+func (x *Consistency) GetCompared() uint64 {
+	if x != nil {
+		return x.Compared
+	}
+	return 0
+}
+
+func (x *Consistency) GetScoreMean() float64 {
+	if x != nil {
+		return x.ScoreMean
+	}
+	return 0
+}
+
+func (x *Consistency) GetScoreMeanSquare() float64 {
+	if x != nil {
+		return x.ScoreMeanSquare
+	}
+	return 0
+}
+
+func (x *Consistency) GetIsolated() bool {
+	if x != nil {
+		return x.Isolated
+	}
+	return false
+}
+
 // Counts since the start.
 type Counts struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
@@ -1172,7 +1472,7 @@ type Counts struct {
 
 func (x *Counts) Reset() {
 	*x = Counts{}
-	mi := &file_leadline_v1_posterior_proto_msgTypes[11]
+	mi := &file_leadline_v1_posterior_proto_msgTypes[13]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1184,7 +1484,7 @@ func (x *Counts) String() string {
 func (*Counts) ProtoMessage() {}
 
 func (x *Counts) ProtoReflect() protoreflect.Message {
-	mi := &file_leadline_v1_posterior_proto_msgTypes[11]
+	mi := &file_leadline_v1_posterior_proto_msgTypes[13]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1197,7 +1497,7 @@ func (x *Counts) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Counts.ProtoReflect.Descriptor instead.
 func (*Counts) Descriptor() ([]byte, []int) {
-	return file_leadline_v1_posterior_proto_rawDescGZIP(), []int{11}
+	return file_leadline_v1_posterior_proto_rawDescGZIP(), []int{13}
 }
 
 func (x *Counts) GetAccepted() uint64 {
@@ -1247,7 +1547,7 @@ type Withdrawn struct {
 
 func (x *Withdrawn) Reset() {
 	*x = Withdrawn{}
-	mi := &file_leadline_v1_posterior_proto_msgTypes[12]
+	mi := &file_leadline_v1_posterior_proto_msgTypes[14]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1259,7 +1559,7 @@ func (x *Withdrawn) String() string {
 func (*Withdrawn) ProtoMessage() {}
 
 func (x *Withdrawn) ProtoReflect() protoreflect.Message {
-	mi := &file_leadline_v1_posterior_proto_msgTypes[12]
+	mi := &file_leadline_v1_posterior_proto_msgTypes[14]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1272,7 +1572,7 @@ func (x *Withdrawn) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Withdrawn.ProtoReflect.Descriptor instead.
 func (*Withdrawn) Descriptor() ([]byte, []int) {
-	return file_leadline_v1_posterior_proto_rawDescGZIP(), []int{12}
+	return file_leadline_v1_posterior_proto_rawDescGZIP(), []int{14}
 }
 
 func (x *Withdrawn) GetTimes() []*timestamppb.Timestamp {
@@ -1286,8 +1586,7 @@ var File_leadline_v1_posterior_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\n" +
-	"\x1bleadline/v1/posterior.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/place.proto\"\xf5\n" +
-	"\n" +
+	"\x1bleadline/v1/posterior.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/place.proto\"\xdd\v\n" +
 	"\tPosterior\x12.\n" +
 	"\x04time\x18\x01 \x01(\v2\x1a.google.protobuf.TimestampR\x04time\x12\x18\n" +
 	"\avehicle\x18\x02 \x01(\tR\avehicle\x12\x10\n" +
@@ -1328,7 +1627,9 @@ const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\x05age_s\x18\x1a \x01(\x01R\x04ageS\x12\x1f\n" +
 	"\vpredicted_s\x18\x1f \x01(\x01R\n" +
 	"predictedS\x122\n" +
-	"\x15newer_map_fingerprint\x18  \x01(\tR\x13newerMapFingerprint\x12\x17\n" +
+	"\x15newer_map_fingerprint\x18  \x01(\tR\x13newerMapFingerprint\x12*\n" +
+	"\x06alarms\x18! \x03(\v2\x12.leadline.v1.AlarmR\x06alarms\x12:\n" +
+	"\vconsistency\x18\" \x03(\v2\x18.leadline.v1.ConsistencyR\vconsistency\x12\x17\n" +
 	"\aoff_map\x18# \x01(\x01R\x06offMap\x12\x12\n" +
 	"\x04lost\x18$ \x01(\x01R\x04lost\x12\x1d\n" +
 	"\n" +
@@ -1383,12 +1684,34 @@ const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x12\n" +
 	"\x04mean\x18\x02 \x01(\x01R\x04mean\x12\x14\n" +
 	"\x05sigma\x18\x03 \x01(\x01R\x05sigma\x12\x12\n" +
-	"\x04unit\x18\x04 \x01(\tR\x04unit\"q\n" +
+	"\x04unit\x18\x04 \x01(\tR\x04unit\"\x8d\x01\n" +
 	"\bEvidence\x12\x16\n" +
 	"\x06sensor\x18\x01 \x01(\tR\x06sensor\x12\x16\n" +
 	"\x06number\x18\x02 \x01(\x04R\x06number\x12\x12\n" +
 	"\x04kind\x18\x03 \x01(\tR\x04kind\x12!\n" +
-	"\flog_evidence\x18\x04 \x01(\x01R\vlogEvidence\"\x8b\x01\n" +
+	"\flog_evidence\x18\x04 \x01(\x01R\vlogEvidence\x12\x1a\n" +
+	"\bwithheld\x18\x05 \x01(\bR\bwithheld\"\xcf\x02\n" +
+	"\x05Alarm\x12*\n" +
+	"\x04kind\x18\x01 \x01(\x0e2\x16.leadline.v1.AlarmKindR\x04kind\x12\x16\n" +
+	"\x06sensor\x18\x02 \x01(\tR\x06sensor\x12)\n" +
+	"\x10measurement_kind\x18\x03 \x01(\tR\x0fmeasurementKind\x12\x12\n" +
+	"\x04post\x18\x04 \x01(\tR\x04post\x122\n" +
+	"\x06raised\x18\x05 \x01(\v2\x1a.google.protobuf.TimestampR\x06raised\x120\n" +
+	"\x05since\x18\x06 \x01(\v2\x1a.google.protobuf.TimestampR\x05since\x12\x1f\n" +
+	"\bevidence\x18\a \x01(\x01H\x00R\bevidence\x88\x01\x01\x12!\n" +
+	"\tthreshold\x18\b \x01(\x01H\x01R\tthreshold\x88\x01\x01B\v\n" +
+	"\t_evidenceB\f\n" +
+	"\n" +
+	"_threshold\"\xe7\x01\n" +
+	"\vConsistency\x12\x16\n" +
+	"\x06sensor\x18\x01 \x01(\tR\x06sensor\x12)\n" +
+	"\x10measurement_kind\x18\x02 \x01(\tR\x0fmeasurementKind\x12\x12\n" +
+	"\x04post\x18\x03 \x01(\tR\x04post\x12\x1a\n" +
+	"\bcompared\x18\x04 \x01(\x04R\bcompared\x12\x1d\n" +
+	"\n" +
+	"score_mean\x18\x05 \x01(\x01R\tscoreMean\x12*\n" +
+	"\x11score_mean_square\x18\x06 \x01(\x01R\x0fscoreMeanSquare\x12\x1a\n" +
+	"\bisolated\x18\a \x01(\bR\bisolated\"\x8b\x01\n" +
 	"\x06Counts\x12\x1a\n" +
 	"\baccepted\x18\x01 \x01(\x04R\baccepted\x12\x18\n" +
 	"\arefused\x18\x02 \x01(\x04R\arefused\x12\x16\n" +
@@ -1403,7 +1726,13 @@ const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\x0eSTATUS_OFF_MAP\x10\x02\x12\x12\n" +
 	"\x0eSTATUS_LOCATED\x10\x03\x12\x14\n" +
 	"\x10STATUS_AMBIGUOUS\x10\x04\x12\x11\n" +
-	"\rSTATUS_UNSURE\x10\x05B'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
+	"\rSTATUS_UNSURE\x10\x05*\x87\x01\n" +
+	"\tAlarmKind\x12\x1a\n" +
+	"\x16ALARM_KIND_UNSPECIFIED\x10\x00\x12\x15\n" +
+	"\x11ALARM_KIND_SPREAD\x10\x01\x12\x13\n" +
+	"\x0fALARM_KIND_BIAS\x10\x02\x12\x19\n" +
+	"\x15ALARM_KIND_IMPOSSIBLE\x10\x03\x12\x17\n" +
+	"\x13ALARM_KIND_ISOLATED\x10\x04B'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
 
 var (
 	file_leadline_v1_posterior_proto_rawDescOnce sync.Once
@@ -1417,56 +1746,64 @@ func file_leadline_v1_posterior_proto_rawDescGZIP() []byte {
 	return file_leadline_v1_posterior_proto_rawDescData
 }
 
-var file_leadline_v1_posterior_proto_enumTypes = make([]protoimpl.EnumInfo, 1)
-var file_leadline_v1_posterior_proto_msgTypes = make([]protoimpl.MessageInfo, 13)
+var file_leadline_v1_posterior_proto_enumTypes = make([]protoimpl.EnumInfo, 2)
+var file_leadline_v1_posterior_proto_msgTypes = make([]protoimpl.MessageInfo, 15)
 var file_leadline_v1_posterior_proto_goTypes = []any{
 	(Status)(0),                   // 0: leadline.v1.Status
-	(*Posterior)(nil),             // 1: leadline.v1.Posterior
-	(*Place)(nil),                 // 2: leadline.v1.Place
-	(*Mode)(nil),                  // 3: leadline.v1.Mode
-	(*Direction)(nil),             // 4: leadline.v1.Direction
-	(*SpeedEstimate)(nil),         // 5: leadline.v1.SpeedEstimate
-	(*EdgeProbability)(nil),       // 6: leadline.v1.EdgeProbability
-	(*Radii)(nil),                 // 7: leadline.v1.Radii
-	(*Region)(nil),                // 8: leadline.v1.Region
-	(*Protection)(nil),            // 9: leadline.v1.Protection
-	(*Nuisance)(nil),              // 10: leadline.v1.Nuisance
-	(*Evidence)(nil),              // 11: leadline.v1.Evidence
-	(*Counts)(nil),                // 12: leadline.v1.Counts
-	(*Withdrawn)(nil),             // 13: leadline.v1.Withdrawn
-	(*timestamppb.Timestamp)(nil), // 14: google.protobuf.Timestamp
-	(*Position)(nil),              // 15: leadline.v1.Position
-	(*Covariance)(nil),            // 16: leadline.v1.Covariance
-	(*Polygon)(nil),               // 17: leadline.v1.Polygon
+	(AlarmKind)(0),                // 1: leadline.v1.AlarmKind
+	(*Posterior)(nil),             // 2: leadline.v1.Posterior
+	(*Place)(nil),                 // 3: leadline.v1.Place
+	(*Mode)(nil),                  // 4: leadline.v1.Mode
+	(*Direction)(nil),             // 5: leadline.v1.Direction
+	(*SpeedEstimate)(nil),         // 6: leadline.v1.SpeedEstimate
+	(*EdgeProbability)(nil),       // 7: leadline.v1.EdgeProbability
+	(*Radii)(nil),                 // 8: leadline.v1.Radii
+	(*Region)(nil),                // 9: leadline.v1.Region
+	(*Protection)(nil),            // 10: leadline.v1.Protection
+	(*Nuisance)(nil),              // 11: leadline.v1.Nuisance
+	(*Evidence)(nil),              // 12: leadline.v1.Evidence
+	(*Alarm)(nil),                 // 13: leadline.v1.Alarm
+	(*Consistency)(nil),           // 14: leadline.v1.Consistency
+	(*Counts)(nil),                // 15: leadline.v1.Counts
+	(*Withdrawn)(nil),             // 16: leadline.v1.Withdrawn
+	(*timestamppb.Timestamp)(nil), // 17: google.protobuf.Timestamp
+	(*Position)(nil),              // 18: leadline.v1.Position
+	(*Covariance)(nil),            // 19: leadline.v1.Covariance
+	(*Polygon)(nil),               // 20: leadline.v1.Polygon
 }
 var file_leadline_v1_posterior_proto_depIdxs = []int32{
-	14, // 0: leadline.v1.Posterior.time:type_name -> google.protobuf.Timestamp
+	17, // 0: leadline.v1.Posterior.time:type_name -> google.protobuf.Timestamp
 	0,  // 1: leadline.v1.Posterior.status:type_name -> leadline.v1.Status
-	15, // 2: leadline.v1.Posterior.mean:type_name -> leadline.v1.Position
-	16, // 3: leadline.v1.Posterior.covariance:type_name -> leadline.v1.Covariance
-	2,  // 4: leadline.v1.Posterior.most_probable:type_name -> leadline.v1.Place
-	3,  // 5: leadline.v1.Posterior.modes:type_name -> leadline.v1.Mode
-	4,  // 6: leadline.v1.Posterior.heading:type_name -> leadline.v1.Direction
-	5,  // 7: leadline.v1.Posterior.speed:type_name -> leadline.v1.SpeedEstimate
-	6,  // 8: leadline.v1.Posterior.edges:type_name -> leadline.v1.EdgeProbability
-	7,  // 9: leadline.v1.Posterior.radii:type_name -> leadline.v1.Radii
-	8,  // 10: leadline.v1.Posterior.regions:type_name -> leadline.v1.Region
-	9,  // 11: leadline.v1.Posterior.protection:type_name -> leadline.v1.Protection
-	10, // 12: leadline.v1.Posterior.nuisances:type_name -> leadline.v1.Nuisance
-	11, // 13: leadline.v1.Posterior.evidence:type_name -> leadline.v1.Evidence
-	12, // 14: leadline.v1.Posterior.counts:type_name -> leadline.v1.Counts
-	14, // 15: leadline.v1.Posterior.as_of:type_name -> google.protobuf.Timestamp
-	15, // 16: leadline.v1.Place.position:type_name -> leadline.v1.Position
-	15, // 17: leadline.v1.Mode.mean:type_name -> leadline.v1.Position
-	16, // 18: leadline.v1.Mode.covariance:type_name -> leadline.v1.Covariance
-	6,  // 19: leadline.v1.Mode.edges:type_name -> leadline.v1.EdgeProbability
-	17, // 20: leadline.v1.Region.polygons:type_name -> leadline.v1.Polygon
-	14, // 21: leadline.v1.Withdrawn.times:type_name -> google.protobuf.Timestamp
-	22, // [22:22] is the sub-list for method output_type
-	22, // [22:22] is the sub-list for method input_type
-	22, // [22:22] is the sub-list for extension type_name
-	22, // [22:22] is the sub-list for extension extendee
-	0,  // [0:22] is the sub-list for field type_name
+	18, // 2: leadline.v1.Posterior.mean:type_name -> leadline.v1.Position
+	19, // 3: leadline.v1.Posterior.covariance:type_name -> leadline.v1.Covariance
+	3,  // 4: leadline.v1.Posterior.most_probable:type_name -> leadline.v1.Place
+	4,  // 5: leadline.v1.Posterior.modes:type_name -> leadline.v1.Mode
+	5,  // 6: leadline.v1.Posterior.heading:type_name -> leadline.v1.Direction
+	6,  // 7: leadline.v1.Posterior.speed:type_name -> leadline.v1.SpeedEstimate
+	7,  // 8: leadline.v1.Posterior.edges:type_name -> leadline.v1.EdgeProbability
+	8,  // 9: leadline.v1.Posterior.radii:type_name -> leadline.v1.Radii
+	9,  // 10: leadline.v1.Posterior.regions:type_name -> leadline.v1.Region
+	10, // 11: leadline.v1.Posterior.protection:type_name -> leadline.v1.Protection
+	11, // 12: leadline.v1.Posterior.nuisances:type_name -> leadline.v1.Nuisance
+	12, // 13: leadline.v1.Posterior.evidence:type_name -> leadline.v1.Evidence
+	15, // 14: leadline.v1.Posterior.counts:type_name -> leadline.v1.Counts
+	17, // 15: leadline.v1.Posterior.as_of:type_name -> google.protobuf.Timestamp
+	13, // 16: leadline.v1.Posterior.alarms:type_name -> leadline.v1.Alarm
+	14, // 17: leadline.v1.Posterior.consistency:type_name -> leadline.v1.Consistency
+	18, // 18: leadline.v1.Place.position:type_name -> leadline.v1.Position
+	18, // 19: leadline.v1.Mode.mean:type_name -> leadline.v1.Position
+	19, // 20: leadline.v1.Mode.covariance:type_name -> leadline.v1.Covariance
+	7,  // 21: leadline.v1.Mode.edges:type_name -> leadline.v1.EdgeProbability
+	20, // 22: leadline.v1.Region.polygons:type_name -> leadline.v1.Polygon
+	1,  // 23: leadline.v1.Alarm.kind:type_name -> leadline.v1.AlarmKind
+	17, // 24: leadline.v1.Alarm.raised:type_name -> google.protobuf.Timestamp
+	17, // 25: leadline.v1.Alarm.since:type_name -> google.protobuf.Timestamp
+	17, // 26: leadline.v1.Withdrawn.times:type_name -> google.protobuf.Timestamp
+	27, // [27:27] is the sub-list for method output_type
+	27, // [27:27] is the sub-list for method input_type
+	27, // [27:27] is the sub-list for extension type_name
+	27, // [27:27] is the sub-list for extension extendee
+	0,  // [0:27] is the sub-list for field type_name
 }
 
 func init() { file_leadline_v1_posterior_proto_init() }
@@ -1479,13 +1816,14 @@ func file_leadline_v1_posterior_proto_init() {
 	file_leadline_v1_posterior_proto_msgTypes[1].OneofWrappers = []any{}
 	file_leadline_v1_posterior_proto_msgTypes[5].OneofWrappers = []any{}
 	file_leadline_v1_posterior_proto_msgTypes[8].OneofWrappers = []any{}
+	file_leadline_v1_posterior_proto_msgTypes[11].OneofWrappers = []any{}
 	type x struct{}
 	out := protoimpl.TypeBuilder{
 		File: protoimpl.DescBuilder{
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_leadline_v1_posterior_proto_rawDesc), len(file_leadline_v1_posterior_proto_rawDesc)),
-			NumEnums:      1,
-			NumMessages:   13,
+			NumEnums:      2,
+			NumMessages:   15,
 			NumExtensions: 0,
 			NumServices:   0,
 		},

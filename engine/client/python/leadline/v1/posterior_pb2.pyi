@@ -6,6 +6,11 @@ from google.protobuf import descriptor as _descriptor
 from google.protobuf import message as _message
 from typing import ClassVar as _ClassVar, Iterable as _Iterable, Mapping as _Mapping, Optional as _Optional, Union as _Union
 
+ALARM_KIND_BIAS: AlarmKind
+ALARM_KIND_IMPOSSIBLE: AlarmKind
+ALARM_KIND_ISOLATED: AlarmKind
+ALARM_KIND_SPREAD: AlarmKind
+ALARM_KIND_UNSPECIFIED: AlarmKind
 DESCRIPTOR: _descriptor.FileDescriptor
 STATUS_AMBIGUOUS: Status
 STATUS_CONTRADICTED: Status
@@ -13,6 +18,44 @@ STATUS_LOCATED: Status
 STATUS_OFF_MAP: Status
 STATUS_UNSPECIFIED: Status
 STATUS_UNSURE: Status
+
+class Alarm(_message.Message):
+    __slots__ = ["evidence", "kind", "measurement_kind", "post", "raised", "sensor", "since", "threshold"]
+    EVIDENCE_FIELD_NUMBER: _ClassVar[int]
+    KIND_FIELD_NUMBER: _ClassVar[int]
+    MEASUREMENT_KIND_FIELD_NUMBER: _ClassVar[int]
+    POST_FIELD_NUMBER: _ClassVar[int]
+    RAISED_FIELD_NUMBER: _ClassVar[int]
+    SENSOR_FIELD_NUMBER: _ClassVar[int]
+    SINCE_FIELD_NUMBER: _ClassVar[int]
+    THRESHOLD_FIELD_NUMBER: _ClassVar[int]
+    evidence: float
+    kind: AlarmKind
+    measurement_kind: str
+    post: str
+    raised: _timestamp_pb2.Timestamp
+    sensor: str
+    since: _timestamp_pb2.Timestamp
+    threshold: float
+    def __init__(self, kind: _Optional[_Union[AlarmKind, str]] = ..., sensor: _Optional[str] = ..., measurement_kind: _Optional[str] = ..., post: _Optional[str] = ..., raised: _Optional[_Union[_timestamp_pb2.Timestamp, _Mapping]] = ..., since: _Optional[_Union[_timestamp_pb2.Timestamp, _Mapping]] = ..., evidence: _Optional[float] = ..., threshold: _Optional[float] = ...) -> None: ...
+
+class Consistency(_message.Message):
+    __slots__ = ["compared", "isolated", "measurement_kind", "post", "score_mean", "score_mean_square", "sensor"]
+    COMPARED_FIELD_NUMBER: _ClassVar[int]
+    ISOLATED_FIELD_NUMBER: _ClassVar[int]
+    MEASUREMENT_KIND_FIELD_NUMBER: _ClassVar[int]
+    POST_FIELD_NUMBER: _ClassVar[int]
+    SCORE_MEAN_FIELD_NUMBER: _ClassVar[int]
+    SCORE_MEAN_SQUARE_FIELD_NUMBER: _ClassVar[int]
+    SENSOR_FIELD_NUMBER: _ClassVar[int]
+    compared: int
+    isolated: bool
+    measurement_kind: str
+    post: str
+    score_mean: float
+    score_mean_square: float
+    sensor: str
+    def __init__(self, sensor: _Optional[str] = ..., measurement_kind: _Optional[str] = ..., post: _Optional[str] = ..., compared: _Optional[int] = ..., score_mean: _Optional[float] = ..., score_mean_square: _Optional[float] = ..., isolated: bool = ...) -> None: ...
 
 class Counts(_message.Message):
     __slots__ = ["accepted", "left_map", "pruned", "refused", "restart"]
@@ -49,16 +92,18 @@ class EdgeProbability(_message.Message):
     def __init__(self, edge: _Optional[int] = ..., name: _Optional[str] = ..., probability: _Optional[float] = ..., twin: _Optional[int] = ...) -> None: ...
 
 class Evidence(_message.Message):
-    __slots__ = ["kind", "log_evidence", "number", "sensor"]
+    __slots__ = ["kind", "log_evidence", "number", "sensor", "withheld"]
     KIND_FIELD_NUMBER: _ClassVar[int]
     LOG_EVIDENCE_FIELD_NUMBER: _ClassVar[int]
     NUMBER_FIELD_NUMBER: _ClassVar[int]
     SENSOR_FIELD_NUMBER: _ClassVar[int]
+    WITHHELD_FIELD_NUMBER: _ClassVar[int]
     kind: str
     log_evidence: float
     number: int
     sensor: str
-    def __init__(self, sensor: _Optional[str] = ..., number: _Optional[int] = ..., kind: _Optional[str] = ..., log_evidence: _Optional[float] = ...) -> None: ...
+    withheld: bool
+    def __init__(self, sensor: _Optional[str] = ..., number: _Optional[int] = ..., kind: _Optional[str] = ..., log_evidence: _Optional[float] = ..., withheld: bool = ...) -> None: ...
 
 class Mode(_message.Message):
     __slots__ = ["covariance", "edges", "mass", "mean"]
@@ -99,10 +144,12 @@ class Place(_message.Message):
     def __init__(self, position: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., probability: _Optional[float] = ..., edge: _Optional[int] = ..., along_m: _Optional[float] = ..., name: _Optional[str] = ...) -> None: ...
 
 class Posterior(_message.Message):
-    __slots__ = ["age_s", "area_probability", "as_of", "counts", "covariance", "durable", "edge_count", "edge_rest", "edges", "entropy_nats", "evidence", "gap_s", "heading", "log_evidence", "lost", "lost_alarm", "map", "map_fingerprint", "mean", "mode_count", "mode_rest", "modes", "most_probable", "newer_map_fingerprint", "nuisances", "off_map", "predicted_s", "protection", "radii", "regions", "revises", "speed", "status", "time", "vehicle"]
+    __slots__ = ["age_s", "alarms", "area_probability", "as_of", "consistency", "counts", "covariance", "durable", "edge_count", "edge_rest", "edges", "entropy_nats", "evidence", "gap_s", "heading", "log_evidence", "lost", "lost_alarm", "map", "map_fingerprint", "mean", "mode_count", "mode_rest", "modes", "most_probable", "newer_map_fingerprint", "nuisances", "off_map", "predicted_s", "protection", "radii", "regions", "revises", "speed", "status", "time", "vehicle"]
     AGE_S_FIELD_NUMBER: _ClassVar[int]
+    ALARMS_FIELD_NUMBER: _ClassVar[int]
     AREA_PROBABILITY_FIELD_NUMBER: _ClassVar[int]
     AS_OF_FIELD_NUMBER: _ClassVar[int]
+    CONSISTENCY_FIELD_NUMBER: _ClassVar[int]
     COUNTS_FIELD_NUMBER: _ClassVar[int]
     COVARIANCE_FIELD_NUMBER: _ClassVar[int]
     DURABLE_FIELD_NUMBER: _ClassVar[int]
@@ -136,8 +183,10 @@ class Posterior(_message.Message):
     TIME_FIELD_NUMBER: _ClassVar[int]
     VEHICLE_FIELD_NUMBER: _ClassVar[int]
     age_s: float
+    alarms: _containers.RepeatedCompositeFieldContainer[Alarm]
     area_probability: float
     as_of: _timestamp_pb2.Timestamp
+    consistency: _containers.RepeatedCompositeFieldContainer[Consistency]
     counts: Counts
     covariance: _place_pb2.Covariance
     durable: bool
@@ -170,7 +219,7 @@ class Posterior(_message.Message):
     status: Status
     time: _timestamp_pb2.Timestamp
     vehicle: str
-    def __init__(self, time: _Optional[_Union[_timestamp_pb2.Timestamp, _Mapping]] = ..., vehicle: _Optional[str] = ..., map: _Optional[str] = ..., map_fingerprint: _Optional[str] = ..., status: _Optional[_Union[Status, str]] = ..., mean: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., covariance: _Optional[_Union[_place_pb2.Covariance, _Mapping]] = ..., most_probable: _Optional[_Union[Place, _Mapping]] = ..., modes: _Optional[_Iterable[_Union[Mode, _Mapping]]] = ..., mode_count: _Optional[int] = ..., mode_rest: _Optional[float] = ..., heading: _Optional[_Union[Direction, _Mapping]] = ..., speed: _Optional[_Union[SpeedEstimate, _Mapping]] = ..., edges: _Optional[_Iterable[_Union[EdgeProbability, _Mapping]]] = ..., edge_count: _Optional[int] = ..., edge_rest: _Optional[float] = ..., radii: _Optional[_Union[Radii, _Mapping]] = ..., regions: _Optional[_Iterable[_Union[Region, _Mapping]]] = ..., area_probability: _Optional[float] = ..., protection: _Optional[_Union[Protection, _Mapping]] = ..., nuisances: _Optional[_Iterable[_Union[Nuisance, _Mapping]]] = ..., entropy_nats: _Optional[float] = ..., evidence: _Optional[_Iterable[_Union[Evidence, _Mapping]]] = ..., log_evidence: _Optional[float] = ..., counts: _Optional[_Union[Counts, _Mapping]] = ..., gap_s: _Optional[float] = ..., durable: bool = ..., revises: bool = ..., as_of: _Optional[_Union[_timestamp_pb2.Timestamp, _Mapping]] = ..., age_s: _Optional[float] = ..., predicted_s: _Optional[float] = ..., newer_map_fingerprint: _Optional[str] = ..., off_map: _Optional[float] = ..., lost: _Optional[float] = ..., lost_alarm: bool = ...) -> None: ...
+    def __init__(self, time: _Optional[_Union[_timestamp_pb2.Timestamp, _Mapping]] = ..., vehicle: _Optional[str] = ..., map: _Optional[str] = ..., map_fingerprint: _Optional[str] = ..., status: _Optional[_Union[Status, str]] = ..., mean: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., covariance: _Optional[_Union[_place_pb2.Covariance, _Mapping]] = ..., most_probable: _Optional[_Union[Place, _Mapping]] = ..., modes: _Optional[_Iterable[_Union[Mode, _Mapping]]] = ..., mode_count: _Optional[int] = ..., mode_rest: _Optional[float] = ..., heading: _Optional[_Union[Direction, _Mapping]] = ..., speed: _Optional[_Union[SpeedEstimate, _Mapping]] = ..., edges: _Optional[_Iterable[_Union[EdgeProbability, _Mapping]]] = ..., edge_count: _Optional[int] = ..., edge_rest: _Optional[float] = ..., radii: _Optional[_Union[Radii, _Mapping]] = ..., regions: _Optional[_Iterable[_Union[Region, _Mapping]]] = ..., area_probability: _Optional[float] = ..., protection: _Optional[_Union[Protection, _Mapping]] = ..., nuisances: _Optional[_Iterable[_Union[Nuisance, _Mapping]]] = ..., entropy_nats: _Optional[float] = ..., evidence: _Optional[_Iterable[_Union[Evidence, _Mapping]]] = ..., log_evidence: _Optional[float] = ..., counts: _Optional[_Union[Counts, _Mapping]] = ..., gap_s: _Optional[float] = ..., durable: bool = ..., revises: bool = ..., as_of: _Optional[_Union[_timestamp_pb2.Timestamp, _Mapping]] = ..., age_s: _Optional[float] = ..., predicted_s: _Optional[float] = ..., newer_map_fingerprint: _Optional[str] = ..., alarms: _Optional[_Iterable[_Union[Alarm, _Mapping]]] = ..., consistency: _Optional[_Iterable[_Union[Consistency, _Mapping]]] = ..., off_map: _Optional[float] = ..., lost: _Optional[float] = ..., lost_alarm: bool = ...) -> None: ...
 
 class Protection(_message.Message):
     __slots__ = ["radius_m", "risk", "unbounded_reason"]
@@ -221,4 +270,7 @@ class Withdrawn(_message.Message):
     def __init__(self, times: _Optional[_Iterable[_Union[_timestamp_pb2.Timestamp, _Mapping]]] = ...) -> None: ...
 
 class Status(int, metaclass=_enum_type_wrapper.EnumTypeWrapper):
+    __slots__ = []
+
+class AlarmKind(int, metaclass=_enum_type_wrapper.EnumTypeWrapper):
     __slots__ = []

@@ -247,6 +247,20 @@ export declare type Posterior = Message<"leadline.v1.Posterior"> & {
   newerMapFingerprint: string;
 
   /**
+   * The alarms that hold: of all sensors together first, then by sensor.
+   *
+   * @generated from field: repeated leadline.v1.Alarm alarms = 33;
+   */
+  alarms: Alarm[];
+
+  /**
+   * How the measurements of each sensor agree with what was expected of them.
+   *
+   * @generated from field: repeated leadline.v1.Consistency consistency = 34;
+   */
+  consistency: Consistency[];
+
+  /**
    * Probability that the vehicle is off the map, where its position is part of
    * mean, covariance, radii, modes, regions and protection.
    *
@@ -656,6 +670,13 @@ export declare type Evidence = Message<"leadline.v1.Evidence"> & {
    * @generated from field: double log_evidence = 4;
    */
   logEvidence: number;
+
+  /**
+   * It was tried and not used: its sensor is isolated. It is not in the sum.
+   *
+   * @generated from field: bool withheld = 5;
+   */
+  withheld: boolean;
 };
 
 /**
@@ -663,6 +684,136 @@ export declare type Evidence = Message<"leadline.v1.Evidence"> & {
  * Use `create(EvidenceSchema)` to create a new message.
  */
 export declare const EvidenceSchema: GenMessage<Evidence>;
+
+/**
+ * Alarm is raised where measurements speak against what is expected of them,
+ * and ends when as much has spoken for it.
+ *
+ * @generated from message leadline.v1.Alarm
+ */
+export declare type Alarm = Message<"leadline.v1.Alarm"> & {
+  /**
+   * @generated from field: leadline.v1.AlarmKind kind = 1;
+   */
+  kind: AlarmKind;
+
+  /**
+   * The sensor; empty for all together, which contradict the belief.
+   *
+   * @generated from field: string sensor = 2;
+   */
+  sensor: string;
+
+  /**
+   * The kind of its measurements, as in Measurement, and of bearings from posts
+   * the post.
+   *
+   * @generated from field: string measurement_kind = 3;
+   */
+  measurementKind: string;
+
+  /**
+   * @generated from field: string post = 4;
+   */
+  post: string;
+
+  /**
+   * When it was raised, UTC.
+   *
+   * @generated from field: google.protobuf.Timestamp raised = 5;
+   */
+  raised?: Timestamp | undefined;
+
+  /**
+   * Since when there has been evidence of it, UTC.
+   *
+   * @generated from field: google.protobuf.Timestamp since = 6;
+   */
+  since?: Timestamp | undefined;
+
+  /**
+   * How much more probable the measurements since then are under the alarm than
+   * as they should be, nats, at most threshold. Neither is set where a
+   * measurement was impossible.
+   *
+   * @generated from field: optional double evidence = 7;
+   */
+  evidence?: number | undefined;
+
+  /**
+   * From how much evidence on it is raised, nats.
+   *
+   * @generated from field: optional double threshold = 8;
+   */
+  threshold?: number | undefined;
+};
+
+/**
+ * Describes the message leadline.v1.Alarm.
+ * Use `create(AlarmSchema)` to create a new message.
+ */
+export declare const AlarmSchema: GenMessage<Alarm>;
+
+/**
+ * Consistency is how a sensor's measurements agree with what was expected of
+ * them, by normal scores: mean 0 and mean square 1 if all is as stated.
+ *
+ * @generated from message leadline.v1.Consistency
+ */
+export declare type Consistency = Message<"leadline.v1.Consistency"> & {
+  /**
+   * @generated from field: string sensor = 1;
+   */
+  sensor: string;
+
+  /**
+   * The kind of its measurements, as in Measurement, and of bearings from posts
+   * the post.
+   *
+   * @generated from field: string measurement_kind = 2;
+   */
+  measurementKind: string;
+
+  /**
+   * @generated from field: string post = 3;
+   */
+  post: string;
+
+  /**
+   * How many were compared since the start: not those that share their errors
+   * with the one before.
+   *
+   * @generated from field: uint64 compared = 4;
+   */
+  compared: bigint;
+
+  /**
+   * Mean of the scores, the latest 60 or so counting most.
+   *
+   * @generated from field: double score_mean = 5;
+   */
+  scoreMean: number;
+
+  /**
+   * Their mean square.
+   *
+   * @generated from field: double score_mean_square = 6;
+   */
+  scoreMeanSquare: number;
+
+  /**
+   * Its measurements are tried and not used.
+   *
+   * @generated from field: bool isolated = 7;
+   */
+  isolated: boolean;
+};
+
+/**
+ * Describes the message leadline.v1.Consistency.
+ * Use `create(ConsistencySchema)` to create a new message.
+ */
+export declare const ConsistencySchema: GenMessage<Consistency>;
 
 /**
  * Counts since the start.
@@ -786,4 +937,50 @@ export enum Status {
  * Describes the enum leadline.v1.Status.
  */
 export declare const StatusSchema: GenEnum<Status>;
+
+/**
+ * AlarmKind says what an alarm is about.
+ *
+ * @generated from enum leadline.v1.AlarmKind
+ */
+export enum AlarmKind {
+  /**
+   * @generated from enum value: ALARM_KIND_UNSPECIFIED = 0;
+   */
+  UNSPECIFIED = 0,
+
+  /**
+   * Errors are larger than stated.
+   *
+   * @generated from enum value: ALARM_KIND_SPREAD = 1;
+   */
+  SPREAD = 1,
+
+  /**
+   * Errors are not about zero.
+   *
+   * @generated from enum value: ALARM_KIND_BIAS = 2;
+   */
+  BIAS = 2,
+
+  /**
+   * A measurement was impossible everywhere in the belief.
+   *
+   * @generated from enum value: ALARM_KIND_IMPOSSIBLE = 3;
+   */
+  IMPOSSIBLE = 3,
+
+  /**
+   * A sensor that disagreed for long while others agreed: its measurements are
+   * tried, and not used until they agree again.
+   *
+   * @generated from enum value: ALARM_KIND_ISOLATED = 4;
+   */
+  ISOLATED = 4,
+}
+
+/**
+ * Describes the enum leadline.v1.AlarmKind.
+ */
+export declare const AlarmKindSchema: GenEnum<AlarmKind>;
 
