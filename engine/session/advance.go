@@ -149,6 +149,7 @@ func (s *Session) step(t sensor.Time, end int) *summary.Posterior {
 	st.time = t
 	s.reached = max(s.reached, t)
 	s.adapt()
+	s.shed()
 	st.unread, s.fresh = true, false
 	var p *summary.Posterior
 	if !s.silent(t) {

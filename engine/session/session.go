@@ -164,6 +164,7 @@ type Session struct {
 	flushed   bool
 	flushedAt sensor.Time
 	pressed   bool // do not wait: see relieve
+	widest    int  // the most cells since shed
 	watch     func(Change)
 }
 
