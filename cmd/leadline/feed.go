@@ -7,6 +7,7 @@ import (
 	"io"
 	"math"
 	"net"
+	"strings"
 	"sync/atomic"
 	"time"
 
@@ -172,10 +173,28 @@ func due(first, at sensor.Time, speed float64) time.Duration {
 // failed words why a feed ended before its drive did.
 func (o *feedOptions) failed(err error) error {
 	worded := serverError(err, o.to)
-	if status.Code(err) == codes.Unavailable {
-		return fmt.Errorf("%w the drive was not fed to its end: feed it again", worded)
+	switch {
+	case endedElsewhere(err):
+		return failure{worded} // the feed was good, and what came of it is not
+	case status.Code(err) == codes.Unavailable:
+		return sentences(worded, "The drive was not fed to its end: feed it again")
 	}
 	return worded
+}
+
+// endedElsewhere reports whether somebody ended the drive that a feed was
+// feeding.
+func endedElsewhere(err error) bool {
+	why, ok := client.WhyOf(err)
+	return ok && why.Reason == leadlinev1.Reason_REASON_DRIVE_ENDED
+}
+
+// sentences is an error with another sentence after it.
+func sentences(err error, next string) error {
+	if strings.HasSuffix(err.Error(), "?") {
+		return fmt.Errorf("%w %s", err, next)
+	}
+	return fmt.Errorf("%w. %s", err, next)
 }
 
 // refusalError words a refusal as replay does.

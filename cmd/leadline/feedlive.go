@@ -99,6 +99,7 @@ func (o *feedOptions) live(c *cobra.Command, from string) error {
 	if err != nil {
 		return fmt.Errorf("%s: %w", from, serverError(err, o.to))
 	}
+	o.resumed(errs, f)
 	if a := stream.Addr(); a != nil {
 		fmt.Fprintf(errs, "listening on %s\n", a)
 	}
@@ -135,7 +136,22 @@ func (o *feedOptions) live(c *cobra.Command, from string) error {
 
 // broken words why a feed ended before the instruments did.
 func (o *feedOptions) broken(err error, drive string) error {
-	return fmt.Errorf("%w the drive was not ended: go on with --drive %s", serverError(err, o.to), drive)
+	if endedElsewhere(err) {
+		return o.failed(err)
+	}
+	return sentences(serverError(err, o.to), fmt.Sprintf("The drive was not ended: go on with --drive %s, if the server still has it", drive))
+}
+
+// resumed says what became of a drive that was to go on: a server that was
+// started again has forgotten it.
+func (o *feedOptions) resumed(errs io.Writer, f *client.Feed) {
+	switch {
+	case o.drive == "":
+	case f.Had() > 0:
+		fmt.Fprintf(errs, "drive %s goes on after its batch %d\n", o.drive, f.Had())
+	default:
+		fmt.Fprintf(errs, "drive %s is a new one: the server has nothing of that name, or has forgotten it\n", o.drive)
+	}
 }
 
 // told prints what became of the lines.

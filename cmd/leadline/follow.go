@@ -115,9 +115,11 @@ func follow(c *cobra.Command, o *followOptions, vehicles []string) error {
 	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
 	defer stop()
 	w, n := c.OutOrStdout(), 0
+	silence := &silence{errs: c.ErrOrStderr(), at: o.at, now: time.Now}
 	err = client.Follow(ctx, conn, client.Following{
 		Request: req,
 		OnUpdate: func(m *leadlinev1.FollowResponse) error {
+			silence.over()
 			if err := o.print(w, m); err != nil {
 				return err
 			}
@@ -126,13 +128,7 @@ func follow(c *cobra.Command, o *followOptions, vehicles []string) error {
 			}
 			return nil
 		},
-		OnBreak: func(err error, anew bool) {
-			if anew {
-				fmt.Fprintln(c.ErrOrStderr(), "leadline: the server does not know the stream any more: it begins anew")
-				return
-			}
-			fmt.Fprintln(c.ErrOrStderr(), "leadline: "+oneLine(serverError(err, o.at).Error())+" Trying again.")
-		},
+		OnBreak: silence.onBreak,
 	})
 	if errors.Is(err, errEnough) || ctx.Err() != nil {
 		return nil

@@ -17,9 +17,12 @@ import (
 	"io"
 	"time"
 
+	"google.golang.org/genproto/googleapis/rpc/errdetails"
 	"google.golang.org/grpc"
+	"google.golang.org/grpc/codes"
 	"google.golang.org/grpc/credentials/insecure"
 	"google.golang.org/grpc/keepalive"
+	"google.golang.org/grpc/status"
 	"google.golang.org/protobuf/proto"
 
 	leadlinev1 "leadline/proto/leadline/v1"
@@ -87,9 +90,10 @@ type Feed struct {
 	have   uint64        // sequence of the last batch that the server had at the start
 	window chan struct{} // one token a batch without receipt
 
-	done   chan struct{} // closed when nothing more is received; then:
-	closed *leadlinev1.Closed
-	err    error
+	done         chan struct{} // closed when nothing more is received; then:
+	acknowledged uint64        // sequence of the last batch with a receipt
+	closed       *leadlinev1.Closed
+	err          error
 }
 
 // Open opens a drive and waits until the server has taken it. The feed ends
@@ -115,7 +119,7 @@ func Open(ctx context.Context, conn grpc.ClientConnInterface, d Drive) (*Feed, e
 	}
 	d.Batch = min(d.Batch, int(opened.GetMaxBatch()))
 	f := &Feed{
-		drive: d, stream: stream, cancel: cancel, have: opened.GetSequence(),
+		drive: d, stream: stream, cancel: cancel, have: opened.GetSequence(), acknowledged: opened.GetSequence(),
 		most:   int(opened.GetMaxMessageBytes()) - overhead,
 		window: make(chan struct{}, d.Window), done: make(chan struct{}),
 	}
@@ -193,10 +197,42 @@ func (f *Feed) send(m *leadlinev1.FeedRequest) error {
 
 // failure is why the feed ended, if not by Close.
 func (f *Feed) failure() error {
-	if f.err != nil {
+	switch {
+	case f.err != nil:
 		return f.err
+	case f.closed != nil:
+		return f.endedElsewhere()
 	}
 	return errors.New("client: the feed is closed")
+}
+
+// Ended is what the server said at the end of the drive, nil as long as it has
+// not ended: also where another one than this feed has ended it, which is then
+// an error of the reason DRIVE_ENDED (WhyOf). It waits for nothing.
+func (f *Feed) Ended() *leadlinev1.Closed {
+	select {
+	case <-f.done:
+		return f.closed
+	default:
+		return nil
+	}
+}
+
+// Had returns the number of batches that the server had of the drive when the
+// feed began: 0 is a drive that is new there.
+func (f *Feed) Had() uint64 { return f.have }
+
+// endedElsewhere is what the server would say to another batch.
+func (f *Feed) endedElsewhere() error {
+	st := status.Newf(codes.FailedPrecondition, "drive %q was ended at the server and not by this feed: what it has not acknowledged is not part of it", f.drive.Name)
+	with, err := st.WithDetails(&errdetails.ErrorInfo{
+		Reason: "DRIVE_ENDED", Domain: domain,
+		Metadata: map[string]string{"drive": f.drive.Name, "vehicle": f.drive.Header.GetVehicle()},
+	})
+	if err != nil { // only of a status that is OK
+		return st.Err()
+	}
+	return with.Err()
 }
 
 // Close sends what waits, ends the drive and returns what the server says at
@@ -205,6 +241,14 @@ func (f *Feed) Close() (*leadlinev1.Closed, error) {
 	defer f.cancel()
 	err := f.Flush()
 	if err == nil {
+		select {
+		case <-f.done: // ended by the server, before it was asked to
+			if f.closed == nil || f.acknowledged < f.sent {
+				return nil, f.failure()
+			}
+			return f.closed, nil
+		default:
+		}
 		err = f.send(&leadlinev1.FeedRequest{Message: &leadlinev1.FeedRequest_End{End: &leadlinev1.End{}}})
 	}
 	if err != nil {
@@ -271,6 +315,7 @@ func (f *Feed) receive() {
 					f.drive.OnRefusal(r)
 				}
 			}
+			f.acknowledged = max(f.acknowledged, k.Receipt.GetSequence())
 			for ; last < k.Receipt.GetSequence() && len(f.window) > 0; last++ {
 				<-f.window
 			}

@@ -8,6 +8,8 @@ import (
 
 	"google.golang.org/grpc/codes"
 	"google.golang.org/grpc/status"
+
+	leadlinev1 "leadline/proto/leadline/v1"
 )
 
 // TestLeave proves that leaving sends everything, waits for the server to have
@@ -114,5 +116,66 @@ func TestContinue(t *testing.T) {
 	}
 	if _, err := f.Close(); err != nil {
 		t.Error(err)
+	}
+}
+
+// TestEndedElsewhere: a drive that the server ends beside its feed ends the feed
+// with the reason DRIVE_ENDED, whatever the feed does next; and one that had all
+// acknowledged before that ends as if by itself.
+func TestEndedElsewhere(t *testing.T) {
+	for _, c := range []struct {
+		name    string
+		receipt bool
+		then    func(f *Feed) error
+		ended   bool // by somebody else
+	}{
+		{"sends", true, func(f *Feed) error {
+			<-f.done
+			for i := range 50 {
+				if err := f.Send(measurement(i)); err != nil {
+					return err
+				}
+			}
+			return nil
+		}, true},
+		{"leaves", true, func(f *Feed) error { <-f.done; return f.Leave() }, true},
+		{"closes, with a batch that was not taken", false, func(f *Feed) error { <-f.done; _, err := f.Close(); return err }, true},
+	} {
+		conn := against(t, func(st serverStream) error {
+			if _, err := st.Recv(); err != nil {
+				return err
+			}
+			if err := st.Send(opened(0, 10, 1000)); err != nil {
+				return err
+			}
+			if _, err := st.Recv(); err != nil {
+				return err
+			}
+			if c.receipt {
+				if err := st.Send(receipt(1)); err != nil {
+					return err
+				}
+			}
+			return st.Send(closing)
+		})
+		f, err := Open(limited(t), conn, Drive{Name: "d", Header: &leadlinev1.DriveHeader{Vehicle: "v"}})
+		if err != nil {
+			t.Fatal(err)
+		}
+		if err := f.Send(measurement(1)); err != nil {
+			t.Fatal(err)
+		}
+		if err := f.Flush(); err != nil {
+			t.Fatal(err)
+		}
+		err = c.then(f)
+		why, ok := WhyOf(err)
+		if c.ended != ok || ok && (why.Reason != leadlinev1.Reason_REASON_DRIVE_ENDED || why.About["drive"] != "d" || why.About["vehicle"] != "v") {
+			t.Errorf("%s: %v, %+v", c.name, err, why)
+		}
+		if f.Ended().GetPosteriors() != 7 {
+			t.Errorf("%s: the server's last word is lost: %v", c.name, f.Ended())
+		}
+		f.Abort()
 	}
 }

@@ -9,6 +9,9 @@ import (
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
+// domain is that of a server's reasons.
+const domain = "leadline.v1"
+
 // Why is why a call failed, in the server's words.
 type Why struct {
 	Reason  leadlinev1.Reason
@@ -29,7 +32,7 @@ func WhyOf(err error) (Why, bool) {
 	st := of.GRPCStatus()
 	for _, d := range st.Details() {
 		info, ok := d.(*errdetails.ErrorInfo)
-		if !ok || info.GetDomain() != "leadline.v1" {
+		if !ok || info.GetDomain() != domain {
 			continue
 		}
 		// A reason of a newer server is unspecified here.

@@ -60,9 +60,9 @@ func (l *driveLog) now(p *summary.Posterior) {
 	switch {
 	case first:
 		l.located = true
-		l.Info("first located", "time", time.Unix(0, p.TimeNS).UTC(), "radius95_m", p.Radius95M)
+		l.Info("first located", "drive_time", time.Unix(0, p.TimeNS).UTC(), "radius95_m", p.Radius95M)
 	case l.status != 0:
-		l.Info("status changed", "from", l.status.String(), "to", p.Status.String(), "changes", l.changes, "time", time.Unix(0, p.TimeNS).UTC(), "radius95_m", p.Radius95M)
+		l.Info("status changed", "from", l.status.String(), "to", p.Status.String(), "changes", l.changes, "drive_time", time.Unix(0, p.TimeNS).UTC(), "radius95_m", p.Radius95M)
 	}
 	l.status, l.changes, l.loggedAt = p.Status, 0, now
 }
@@ -72,7 +72,7 @@ func (l *driveLog) now(p *summary.Posterior) {
 func (l *driveLog) refused(r *leadlinev1.Refusal) {
 	if l.perReason[r.GetReason()]++; l.perReason[r.GetReason()] == 1 {
 		l.Warn("measurement refused: the first for this reason, others are counted",
-			"reason", r.GetReason().String(), "sensor", r.GetSensor(), "number", r.GetNumber(), "time", r.GetTime().AsTime(), "detail", r.GetDetail())
+			"reason", r.GetReason().String(), "sensor", r.GetSensor(), "number", r.GetNumber(), "drive_time", r.GetTime().AsTime(), "detail", r.GetDetail())
 	}
 }
 

@@ -130,29 +130,29 @@ func TestLog(t *testing.T) {
 		got = append(got, line)
 	}
 	refusal := func(reason, sensor, detail string) string {
-		return fmt.Sprintf(`WARN msg="measurement refused: the first for this reason, others are counted" vehicle=v drive=%%s reason=%s sensor=%s number=%%d time=%%s detail=%s`, reason, sensor, detail)
+		return fmt.Sprintf(`WARN msg="measurement refused: the first for this reason, others are counted" vehicle=v drive=%%s reason=%s sensor=%s number=%%d drive_time=%%s detail=%s`, reason, sensor, detail)
 	}
 	at := "2030-05-01T12:00:00.000Z"
 	want := []string{
 		`INFO msg="drive opened" vehicle=v drive=one map=sea suite=""`,
-		`INFO msg="first located" vehicle=v drive=one time=` + at + ` radius95_m=12`,
-		`INFO msg="status changed" vehicle=v drive=one from=located to=contradicted changes=11 time=` + at + ` radius95_m=12`,
+		`INFO msg="first located" vehicle=v drive=one drive_time=` + at + ` radius95_m=12`,
+		`INFO msg="status changed" vehicle=v drive=one from=located to=contradicted changes=11 drive_time=` + at + ` radius95_m=12`,
 		fmt.Sprintf(refusal("REASON_TOO_LATE", "late", `"no such mood"`), "one", 0, at),
 		fmt.Sprintf(refusal("REASON_UNUSABLE", `""`, `"time: missing: give it as RFC 3339, like 2030-05-01T12:00:00.25Z"`), "one", 0, "1970-01-01T00:00:00.000Z"),
 		`INFO msg="drive resumed" vehicle=v drive=one after_batch=9 takes_over=true`,
-		`INFO msg="status changed" vehicle=v drive=one from=contradicted to=located changes=1 time=` + at + ` radius95_m=12`,
+		`INFO msg="status changed" vehicle=v drive=one from=contradicted to=located changes=1 drive_time=` + at + ` radius95_m=12`,
 		`INFO msg="drive ended" vehicle=v drive=one posteriors=16 accepted=16 refused=1 refused_for.REASON_UNUSABLE=1 refused_for.REASON_TOO_LATE=3`,
 		`INFO msg="drive opened" vehicle=v drive=two map=sea suite=""`,
-		`INFO msg="drive dropped" vehicle=v drive=one why="vehicle \"v\" has opened drive \"two\" in place of drive \"one\"" ended=true posteriors=16 accepted=16 refused=1 refused_for.REASON_UNUSABLE=1 refused_for.REASON_TOO_LATE=3`,
+		`INFO msg="ended drive forgotten" vehicle=v drive=one why="vehicle \"v\" has opened drive \"two\" in place of drive \"one\""`,
 		fmt.Sprintf(refusal("REASON_TOO_LATE", "late", `"no such mood"`), "two", 1, at),
 		`INFO msg="drive opened" vehicle=v drive=three map=sea suite=""`,
-		`INFO msg="drive dropped" vehicle=v drive=two why="vehicle \"v\" has opened drive \"three\" in place of drive \"two\"" ended=false posteriors=1 accepted=1 refused=0 refused_for.REASON_TOO_LATE=1`,
+		`INFO msg="drive dropped" vehicle=v drive=two why="vehicle \"v\" has opened drive \"three\" in place of drive \"two\"" posteriors=1 accepted=1 refused=0 refused_for.REASON_TOO_LATE=1`,
 		`INFO msg="drive opened" vehicle=w drive=four map=sea suite=""`,
 		`INFO msg="drive ended" vehicle=w drive=four posteriors=0 accepted=0 refused=0`,
 		`INFO msg="drive opened" vehicle=x drive=five map=sea suite=""`,
-		`INFO msg="drive dropped" vehicle=w drive=four why="drive \"four\" of vehicle \"w\" was idle, and dropped to make room: open another drive" ended=true posteriors=0 accepted=0 refused=0`,
+		`INFO msg="ended drive forgotten" vehicle=w drive=four why="drive \"four\" of vehicle \"w\" had ended, and makes room for another vehicle's"`,
 		`INFO msg="drive ended" vehicle=x drive=five posteriors=0 accepted=0 refused=0`,
-		`INFO msg="drive dropped" vehicle=v drive=three why="the server stops: open the drive again later; what was not acknowledged must be sent again" ended=false posteriors=0 accepted=0 refused=0`,
+		`INFO msg="drive dropped" vehicle=v drive=three why="the server stops: open the drive again later; what was not acknowledged must be sent again" posteriors=0 accepted=0 refused=0`,
 	}
 	// What different drives say may come in any order.
 	for _, w := range want {

@@ -165,9 +165,12 @@ func (o *owner) leave() {
 		o.farewell(false, "", why)
 	}
 	o.srv.hub.forget(o.subject)
-	if !o.ended || !errors.Is(o.err, errStopping) {
-		accepted, refused := o.counts()
-		o.log.Info("drive dropped", "why", why, "ended", o.ended, "posteriors", o.posteriors, "accepted", accepted, "refused", refused, o.log.reasons())
+	accepted, refused := o.counts()
+	switch {
+	case !o.ended:
+		o.log.Info("drive dropped", "why", why, "posteriors", o.posteriors, "accepted", accepted, "refused", refused, o.log.reasons())
+	case !errors.Is(o.err, errStopping):
+		o.log.Info("ended drive forgotten", "why", why)
 	}
 }
 

@@ -159,7 +159,11 @@ func (s *Server) makeRoom() bool {
 	if oldest == nil {
 		return false
 	}
-	oldest.stop(refuse(leadlinev1.Reason_REASON_REPLACED, oldest.about(), "drive %q of vehicle %q was idle, and dropped to make room: open another drive", oldest.drive, oldest.vehicle))
+	how := "was idle, and dropped to make room: open another drive"
+	if oldest.finished {
+		how = "had ended, and makes room for another vehicle's"
+	}
+	oldest.stop(refuse(leadlinev1.Reason_REASON_REPLACED, oldest.about(), "drive %q of vehicle %q %s", oldest.drive, oldest.vehicle, how))
 	delete(s.owners, oldest.vehicle)
 	return true
 }
