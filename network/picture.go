@@ -55,8 +55,8 @@ var kinds = []kind{
 	{"in a tunnel", tunnelColour, 3.4, 7, func(m *Map, c int32) bool { return m.Tunnel(c) }},
 }
 
-// Picture draws the map as a PNG: roads by how they hang together, bridges and
-// tunnels, what Check found, a scale bar and a north arrow. North of the
+// Picture draws the map as a PNG: roads by how they hang together and which way
+// they may be driven, bridges and tunnels, what Check found, a scale bar and a north arrow. North of the
 // frame is up, which is true north in the middle of the map.
 func Picture(w io.Writer, m *Map) error {
 	r := Check(m)
@@ -78,6 +78,7 @@ func Picture(w io.Writer, m *Map) error {
 	for _, k := range kinds {
 		c.roads(m, k)
 	}
+	c.arrows(m)
 	for _, s := range r.NearMisses.List {
 		c.mark(c.place(m, s), missColour, circle)
 	}
@@ -85,7 +86,7 @@ func Picture(w io.Writer, m *Map) error {
 		c.mark(c.place(m, s), trapColour, triangle)
 	}
 	c.head(r)
-	c.foot(r)
+	c.foot(r, m.oneWays())
 	return png.Encode(w, c.img)
 }
 
@@ -134,7 +135,7 @@ func (c *canvas) head(r Report) {
 	c.text(int(x)-6, int(y)+50, "N", bold, 18, inkColour)
 }
 
-func (c *canvas) foot(r Report) {
+func (c *canvas) foot(r Report, oneWays int) {
 	top := c.img.Bounds().Dy() - footHeight + 18
 	draw.Draw(c.img, image.Rect(margin, top, pictureWidth-margin, top+1), image.NewUniform(color.RGBA{0xcc, 0xcc, 0xcc, 0xff}), image.Point{}, draw.Src)
 	// Legend: two rows of kinds and marks.
@@ -170,8 +171,12 @@ func (c *canvas) foot(r Report) {
 		}
 		c.text(x+46, y, text+")", regular, 17, inkColour)
 	}
+	x, y := cell(len(kinds) + 2)
+	c.polygon(arrow(geo.Point{E: float64(x + 17), N: float64(y - 6)}, geo.Point{E: 1}))
+	c.paint(inkColour)
+	c.text(x+46, y, "one way, as it points ("+plural(oneWays, "road")+")", regular, 17, inkColour)
 	c.scaleBar(margin, top+124)
-	licence := strings.Join(strings.Fields(orUnstated(r.Licence)), " ")
+	licence := "licence: " + strings.Join(strings.Fields(orUnstated(r.Licence)), " ")
 	const most = 120 // characters that fit beside the scale bar
 	if rest := []rune(licence); len(rest) > most {
 		licence = string(rest[:most]) + "…"

@@ -59,8 +59,12 @@ func (p Parts) write(line writeLine, label, what string) {
 		line(label, "all %.1f km are %s", p.LargestKM, what)
 		return
 	}
-	line(label, "%d parts are %s; the largest has %.1f km, %.2f %% of the edges; the other %d have %.1f km",
-		p.Count, what, p.LargestKM, 100*p.Share, p.Count-1, p.OtherKM)
+	others := fmt.Sprintf("the other %d have", p.Count-1)
+	if p.Count == 2 {
+		others = "the other one has"
+	}
+	line(label, "%d parts are %s; the largest has %.1f km, %.2f %% of the edges; %s %.1f km",
+		p.Count, what, p.LargestKM, 100*p.Share, others, p.OtherKM)
 	var why []string
 	for _, w := range []struct {
 		n    int

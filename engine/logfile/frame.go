@@ -55,11 +55,11 @@ func frame(line []byte) (s sentence, pass passed, bad *refusal) {
 	text := line[start+1:]
 	star := bytes.LastIndexByte(text, '*')
 	if star < 0 {
-		return s, "", &refusal{start + 1, "no checksum", string(line[start:])}
+		return s, "", &refusal{start + 1, noChecksum, string(line[start:])}
 	}
 	said, err := strconv.ParseUint(string(text[star+1:]), 16, 8)
 	if err != nil || len(text)-star != 3 {
-		return s, "", &refusal{start + star + 2, "no checksum", string(line[start:])}
+		return s, "", &refusal{start + star + 2, noChecksum, string(line[start:])}
 	}
 	body := text[:star]
 	if is := checksum(body); byte(said) != is {
@@ -106,6 +106,9 @@ func upper(s string) bool {
 	}
 	return true
 }
+
+// noChecksum is the reason of a sentence that has none.
+const noChecksum = "no checksum"
 
 // checksum is the exclusive or of all bytes (NMEA 0183).
 func checksum(body []byte) (x byte) {

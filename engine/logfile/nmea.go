@@ -13,10 +13,11 @@ import (
 
 // NMEA makes records of NMEA 0183 lines. One goroutine may use it.
 type NMEA struct {
-	o      *Sentences
-	emit   Emit
-	tally  *Tally
-	prefix timeParser
+	o         *Sentences
+	emit      Emit
+	tally     *Tally
+	sentences int // framed ones, good or bad
+	prefix    timeParser
 
 	place  place
 	utc    utc
@@ -99,6 +100,9 @@ func (n *NMEA) Line(line []byte, whole bool, arrived sensor.Time) error {
 		return nil
 	}
 	s, pass, bad := frame(line)
+	if bad != nil || pass == "" {
+		n.sentences++
+	}
 	if i := bytes.IndexByte(s.before, '$'); i >= 0 {
 		n.refuse(&refusal{i + 1, "cut off by the next sentence", string(s.before[i:])})
 	}
@@ -155,6 +159,10 @@ func (n *NMEA) End() error {
 		if err := n.use(n.epochs.end()); err != nil {
 			return err
 		}
+	}
+	if r := n.tally.reasons[noChecksum]; r != nil && 2*r.Count > n.sentences && n.tally.Usable() == 0 && n.tally.Truths == 0 {
+		return fmt.Errorf("%s: %d of %d sentences have no checksum, first %s: one without it may be damaged and is not used; have what writes the log keep the two digits after the *",
+			n.tally.Log, r.Count, n.sentences, r.First[0])
 	}
 	if from := n.o.Time.From; (from == "" || from == FromSentence) && !n.utc.known {
 		return fmt.Errorf("%s: no sentence says the time and the date (ZDA, or RMC with a fix): state the date, or take the times from a prefix or a tag", n.tally.Log)

@@ -79,6 +79,25 @@ func TestTimesOfSentences(t *testing.T) {
 	}
 }
 
+// TestNoChecksums: a log whose sentences have no checksum says so, and not that
+// none says the time; one among others says nothing of that.
+func TestNoChecksums(t *testing.T) {
+	read := func(text string) error {
+		_, err := ReadNMEA(strings.NewReader(text), "x.nmea", &Sentences{}, func(Record) error { return nil })
+		return err
+	}
+	bare := "$GPZDA,120000,01,05,2030,,\n\n$SDDPT,14.39,0.00\n"
+	if err := read(bare); err == nil || !strings.Contains(err.Error(), "x.nmea: 2 of 2 sentences have no checksum, first x.nmea:1:") {
+		t.Errorf("%v", err)
+	}
+	if err := read(bare + sum("SDDPT,14.39,0.00") + "\n"); err == nil || !strings.Contains(err.Error(), "2 of 3 sentences") {
+		t.Errorf("%v", err)
+	}
+	if err := read("$SDDPT,14.39,0.00\n" + sum("GPZDA,120000,01,05,2030,,") + "\n" + sum("SDDPT,14.39,0.00") + "\n"); err != nil {
+		t.Errorf("%v", err)
+	}
+}
+
 func tag(body string) string { return fmt.Sprintf(`\%s*%02X\`, body, checksum([]byte(body))) }
 
 // Without any time a log cannot be used, and it says what to do.

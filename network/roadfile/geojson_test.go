@@ -3,6 +3,7 @@ package roadfile
 import (
 	"fmt"
 	"math"
+	"reflect"
 	"strings"
 	"testing"
 
@@ -316,7 +317,7 @@ func TestSameAgain(t *testing.T) {
 		first, notes := readTown(t, opt)
 		for range 5 {
 			m, again := readTown(t, opt)
-			if again != notes {
+			if !reflect.DeepEqual(again, notes) {
 				t.Errorf("notes %+v, then %+v", notes, again)
 			}
 			sameColumns(t, m, first)

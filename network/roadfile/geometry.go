@@ -75,6 +75,7 @@ func (g *geoJSON) lineString(raw json.RawMessage, t tags, name string) error {
 	if !wanted {
 		return nil
 	}
+	g.notes.unknown(t, name)
 	a := t.attributes()
 	return g.add(g.nodes, g.heights, name, a, t.direction(a))
 }

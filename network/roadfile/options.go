@@ -108,6 +108,37 @@ type Notes struct {
 	Bans          int // forbidden turns
 	UnusedBans    int // turn restrictions via a way, or that name no road read
 	ThroughJoints int // places where two lines of the same road became one
+
+	// Unknown are values of tags that mean nothing here, in the order in which
+	// they came, at most maxUnknown different ones. The tag counts as left out.
+	Unknown []UnknownValue
+}
+
+// UnknownValue is a value of a tag that means nothing here.
+type UnknownValue struct {
+	Tag, Value string
+	Count      int
+	First      string // the feature that had it first
+}
+
+// maxUnknown bounds the list of unknown values.
+const maxUnknown = 20
+
+// unknown notes the values of a road's tags that mean nothing here.
+func (n *Notes) unknown(t tags, feature string) {
+	for _, tag := range checkedTags {
+		v := t(tag.name)
+		if v == "" || tag.known(v) {
+			continue
+		}
+		i := slices.IndexFunc(n.Unknown, func(u UnknownValue) bool { return u.Tag == tag.name && u.Value == v })
+		switch {
+		case i >= 0:
+			n.Unknown[i].Count++
+		case len(n.Unknown) < maxUnknown:
+			n.Unknown = append(n.Unknown, UnknownValue{tag.name, v, 1, feature})
+		}
+	}
 }
 
 // String describes the notes in a few sentences.
@@ -131,5 +162,8 @@ func (n Notes) String() string {
 		n.Repeated, "repeated", n.UnusedBans, "turn restrictions", n.MissingNodes, "vertices that the file does not hold")
 	list(" Made: ", n.JoinedEnds, "joints of ends that came near", n.Crossings, "junctions at crossings",
 		n.Bans, "forbidden turns", n.ThroughJoints, "joints within one road")
+	for _, u := range n.Unknown {
+		fmt.Fprintf(&b, "\nnote: %s=%.40q means nothing here and counts as left out, %d times, first in %s", u.Tag, u.Value, u.Count, u.First)
+	}
 	return b.String()
 }

@@ -128,6 +128,7 @@ func (o *osmReader) finish() error {
 			nodes = append(nodes, n)
 		}
 		t := tags(w.tags.Find)
+		o.notes.unknown(t, wayName(w.id))
 		a := t.attributes()
 		if err := o.add(nodes, nil, wayName(w.id), a, t.direction(a)); err != nil {
 			return err

@@ -1,6 +1,7 @@
 package roadfile
 
 import (
+	"slices"
 	"strconv"
 	"strings"
 
@@ -45,6 +46,20 @@ func (t tags) direction(a network.Attributes) direction {
 		return direction{forward: true}
 	}
 	return direction{true, true}
+}
+
+// checkedTags are those of which an unknown value changes what the map says.
+var checkedTags = []struct {
+	name  string
+	known func(v string) bool
+}{
+	{"oneway", func(v string) bool {
+		return slices.Contains([]string{"yes", "true", "1", "-1", "reverse", "no", "false", "0", "reversible", "alternating"}, v)
+	}},
+	{"layer", func(v string) bool {
+		_, err := strconv.ParseInt(strings.TrimSpace(v), 10, 64)
+		return err == nil
+	}},
 }
 
 // layer returns a whole number, 0 if there is none; ordinary maps use -5 to 5,

@@ -13,6 +13,11 @@ import { Reason } from "./leadline/v1/reason_pb.js";
 const [path, address = "127.0.0.1:7700"] = process.argv.slice(2);
 const batch = 64;
 
+if (!path || process.argv.length > 4) {
+  console.error("usage: node stream-drive.js DRIVE [HOST:PORT]");
+  process.exit(2);
+}
+
 /** Reads a drive file: its header, and its measurements in the order of time. */
 function read() {
   let header;

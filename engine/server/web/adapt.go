@@ -150,18 +150,22 @@ func inward(err error) error {
 	if !errors.As(err, &ce) {
 		return status.FromContextError(err).Err()
 	}
-	st := status.New(codes.Code(ce.Code()), strings.ReplaceAll(ce.Message(), "\u00a0", " ")) // protobuf varies its spaces
-	if st.Code() == codes.InvalidArgument {
-		st = because(st, leadlinev1.Reason_REASON_BAD_FIELD)
+	said := strings.ReplaceAll(ce.Message(), "\u00a0", " ") // protobuf varies its spaces
+	if code := codes.Code(ce.Code()); code != codes.InvalidArgument {
+		return status.New(code, said).Err()
 	}
-	return st.Err()
+	return reworded(said).Err()
 }
 
-// because adds a reason to a status.
-func because(st *status.Status, r leadlinev1.Reason) *status.Status {
+// because adds a reason to a status, and what it is about as keys and values.
+func because(st *status.Status, r leadlinev1.Reason, about ...string) *status.Status {
+	on := map[string]string{}
+	for i := 0; i < len(about); i += 2 {
+		on[about[i]] = about[i+1]
+	}
 	with, err := st.WithDetails(&errdetails.ErrorInfo{
 		Domain: string(leadlinev1.File_leadline_v1_reason_proto.Package()),
-		Reason: strings.TrimPrefix(r.String(), "REASON_"),
+		Reason: strings.TrimPrefix(r.String(), "REASON_"), Metadata: on,
 	})
 	if err != nil {
 		panic("web: " + err.Error()) // only for a status that is OK

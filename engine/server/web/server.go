@@ -153,6 +153,9 @@ func (s *Server) ServeHTTP(w http.ResponseWriter, r *http.Request) {
 	if s.guard.cross(limited, r) {
 		return
 	}
+	if s.unreadable(limited, r) {
+		return
+	}
 	s.mux.ServeHTTP(limited, r)
 }
 

@@ -151,7 +151,7 @@ func Of(in Input) (*Score, error) {
 	if first >= 0 {
 		after := float64(in.Posteriors[first].TimeNS-in.StartNS) / 1e9
 		s.LocatedAfterS = &after
-		m, ok, err := distance(in.Truth, in.Posteriors[first].TimeNS)
+		m, ok, err := distance(in.Truth, in.StartNS, in.Posteriors[first].TimeNS)
 		if err != nil {
 			return nil, err
 		}
@@ -224,11 +224,11 @@ func Interpolate(truth []Truth, timeNS int64) (Truth, bool) {
 	}, true
 }
 
-// distance sums the way between the truths up to a time; not ok if the truth
-// does not reach it.
-func distance(truth []Truth, untilNS int64) (sumM float64, ok bool, err error) {
+// distance sums the way between the truths from a start up to a time; not ok if
+// the truth does not reach from one to the other.
+func distance(truth []Truth, startNS, untilNS int64) (sumM float64, ok bool, err error) {
 	end, ok := Interpolate(truth, untilNS)
-	if !ok {
+	if !ok || truth[0].TimeNS > startNS+maxTruthGapNS { // the way before the first truth is not known
 		return 0, false, nil
 	}
 	for i := 1; i < len(truth) && truth[i-1].TimeNS < untilNS; i++ {
