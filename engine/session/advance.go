@@ -3,6 +3,7 @@ package session
 import (
 	"fmt"
 	"math"
+	"sort"
 
 	"leadline/engine/filter"
 	"leadline/engine/sensor"
@@ -12,7 +13,7 @@ import (
 // run computes as many times as are due, all if flush is set.
 func (s *Session) run(flush bool) []*summary.Posterior {
 	var out []*summary.Posterior
-	for s.log.next < len(s.log.events) {
+	for s.log.next < s.horizon() {
 		t := s.log.events[s.log.next].Time
 		if !s.state.begun {
 			if !flush && !s.due(t) {
@@ -25,7 +26,7 @@ func (s *Session) run(flush bool) []*summary.Posterior {
 		}
 		end, motionOnly := s.log.group(s.log.next)
 		for stride := s.stride(); motionOnly && t.Seconds(s.state.time) < stride && s.silent(t); {
-			if end == len(s.log.events) {
+			if end == s.horizon() {
 				if flush || s.pressed {
 					break
 				}
@@ -43,6 +44,15 @@ func (s *Session) run(flush bool) []*summary.Posterior {
 		}
 	}
 	return out
+}
+
+// horizon is the index of the first event that is not to be computed.
+func (s *Session) horizon() int {
+	n := len(s.log.events)
+	if s.until == 0 {
+		return n
+	}
+	return sort.Search(n, func(i int) bool { return s.log.events[i].Time > s.until })
 }
 
 // due reports whether a time need not wait any longer: what was computed once
@@ -148,8 +158,13 @@ func (s *Session) step(t sensor.Time, end int) *summary.Posterior {
 	s.log.next = end
 	st.time = t
 	s.reached = max(s.reached, t)
+	s.look()
 	s.adapt()
 	s.shed()
+	if s.unheard {
+		s.turnHere()
+		return nil
+	}
 	st.unread, s.fresh = true, false
 	var p *summary.Posterior
 	if !s.silent(t) {

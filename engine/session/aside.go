@@ -23,6 +23,10 @@ type aside struct {
 	// quietS for how long the vehicle has been silent or standing.
 	roadM, quietS float64
 	alarm         bool // lost
+	// woke is when the last quiet of more than quietAfterS ended; search is on
+	// its way, nil for none, and searched when the last one came in.
+	woke, searched sensor.Time
+	search         *search
 }
 
 func (a *aside) on() float64 { return 1 - a.off - a.lost }
@@ -134,6 +138,9 @@ func (s *Session) lose(dt float64, moves bool) {
 	a.quietS += dt
 	rate := float64(s.rates.lost*dt) + float64(s.rates.moved*(math.Max(a.quietS-quietAfterS, 0)-before))
 	if moves {
+		if a.quietS-dt > quietAfterS {
+			a.woke = s.motion.From
+		}
 		a.quietS = 0
 	}
 	keep := kernel.Exp(-rate)

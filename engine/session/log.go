@@ -143,10 +143,11 @@ func (l *log) covered(t, hold sensor.Time) bool {
 }
 
 // drop forgets what nothing after a time needs: in large bites, so that the
-// copying stays linear, or all of it.
-func (l *log) drop(t sensor.Time, all bool) {
+// copying stays linear, or all of it. keep sees the events that go.
+func (l *log) drop(t sensor.Time, all bool, keep func([]sensor.Event)) {
 	n := sort.Search(l.next, func(i int) bool { return l.events[i].Time > t })
 	if worth(n, len(l.events), all) {
+		keep(l.events[:n])
 		l.events = slices.Delete(l.events, 0, n)
 		l.next -= n
 	}

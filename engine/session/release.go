@@ -84,7 +84,7 @@ func (s *Session) snapshot() {
 	for len(s.snaps) > 1 && now.Seconds(s.snaps[1].time) > window {
 		s.snaps = slices.Delete(s.snaps, 0, 1)
 	}
-	s.log.drop(s.snaps[0].time, false)
+	s.log.drop(s.snaps[0].time, false, s.keepPast)
 }
 
 // rewind restores the last snapshot before a time.
@@ -126,7 +126,7 @@ func (s *Session) relieve() []*summary.Posterior {
 		default:
 			s.snaps = append(s.snaps[:0], snapshot{s.state.time, s.state.clone()})
 		}
-		s.log.drop(s.snaps[0].time, true)
+		s.log.drop(s.snaps[0].time, true, s.keepPast)
 	}
 	return out
 }

@@ -27,6 +27,10 @@ type Config struct {
 	// It decides the resolution of a wide start, and so belongs to what a
 	// posterior depends on.
 	MaxCells int
+	// Begin, if set, begins a piece of work elsewhere, which touches nothing that
+	// anybody else has, and returns what waits for its end; nil has it done when
+	// its end is waited for. See search.go.
+	Begin func(work func()) (wait func())
 }
 
 // Names is what a road map knows about its directed edges.
@@ -136,6 +140,12 @@ type Session struct {
 	rates  rates
 	near   filter.Nearby // nil: nothing comes back onto the roads
 	areaM2 float64       // of the map's box
+	// For searches: events that the log has dropped, who runs them; and in one's
+	// own session that nobody reads it, and until when it goes.
+	past      []sensor.Event
+	beginWork func(func()) func()
+	unheard   bool
+	until     sensor.Time
 
 	state  state
 	snaps  []snapshot
@@ -181,7 +191,7 @@ func New(c Config) (*Session, error) {
 	}
 	s := &Session{
 		vehicle: c.Vehicle, space: c.Space, names: c.Names, dim: 2, maxCells: c.MaxCells, hasher: summary.NewHasher(),
-		wideSize: wideSize, hugeSize: hugeSize, maxWaiting: maxWaiting,
+		beginWork: c.Begin, wideSize: wideSize, hugeSize: hugeSize, maxWaiting: maxWaiting,
 	}
 	if s.maxCells == 0 {
 		s.maxCells = defaultMaxCells

@@ -147,7 +147,7 @@ func moments(alpha, q, f, y float64) (m0, m1, m2 float64) {
 
 // weigh returns ∫ w f from the moments of w.
 func (t *tailTables) weigh(alpha, m0, m1, m2 float64) float64 {
-	mean := m1 / m0
+	mean := math.Max(m1/m0, 0) // of a tiny m0, the difference of two, rounding may be more
 	variance := m2/m0 - float64(mean*mean)
 	z := alpha * mean
 	d := 1 + float64(float64(z*z)*(1.25+0.75*z/(z+6)))

@@ -69,3 +69,16 @@ func TestTailTables(t *testing.T) {
 		}
 	}
 }
+
+// TestTinyCircle takes circles so small, far from the middle of the Gaussian, that
+// what is in them is the rounding of a difference.
+func TestTinyCircle(t *testing.T) {
+	tab := tables()
+	for alpha := 0.0; alpha < 8; alpha += 0.003 {
+		for beta := 1e-6; beta < 0.2; beta *= 1.1 {
+			if q := tab.circleTail(alpha, beta); !(q >= 0 && q <= 1) || q < 1-beta*beta {
+				t.Fatalf("alpha %v, beta %v: %v", alpha, beta, q)
+			}
+		}
+	}
+}

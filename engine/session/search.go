@@ -1,0 +1,185 @@
+package session
+
+import (
+	"slices"
+	"sort"
+
+	"leadline/engine/filter"
+	"leadline/engine/sensor"
+)
+
+// When being lost is the likeliest, the whole map is searched: a new belief,
+// seeded anywhere, replays the last minutes of events, and then takes the share of
+// the hypothesis that the vehicle is lost. What it found competes with what was
+// there from then on; evidence decides.
+//
+// The search is a function of the set of events. It covers searchBackS before the
+// alarm, no more than maxSearched events of them, and nothing from before the end
+// of the last long stop or silence, in which the vehicle may have been carried.
+// It enters enterAfterS after the alarm, by the events' time, and the session
+// waits for it then: whoever runs it meanwhile elsewhere (Config.Begin) changes
+// when the answer comes and not what it is. The next one begins searchAgainS
+// later at the earliest.
+const (
+	searchBackS  = 300.0
+	maxSearched  = 1 << 14
+	enterAfterS  = 5.0
+	searchAgainS = 60.0
+)
+
+// search is one on its way. It is not changed once it is made.
+type search struct {
+	found *Session // what wait leaves: the belief at the time of the alarm
+	wait  func()   // until it is done
+	enter sensor.Time
+}
+
+// keepPast keeps events that the log drops, for searches; in large bites.
+func (s *Session) keepPast(dropped []sensor.Event) {
+	if s.rates.lost == 0 && s.rates.moved == 0 {
+		return
+	}
+	s.past = append(s.past, dropped...)
+	if len(s.past) < 1024 {
+		return
+	}
+	n := len(s.past)
+	oldest := s.past[n-1].Time - sensor.Time(1.25*searchBackS*1e9)
+	from := sort.Search(n, func(i int) bool { return s.past[i].Time >= oldest })
+	if from = max(from, n-maxSearched-maxSearched/4); from > n/8 {
+		s.past = append(s.past[:0], s.past[from:]...)
+	}
+}
+
+// look begins a search where one is due, and lets one in that is.
+func (s *Session) look() {
+	st := &s.state
+	a := &st.aside
+	switch {
+	case a.search != nil && st.time >= a.search.enter:
+		s.letIn(a.search)
+		a.search, a.searched = nil, st.time
+	case a.search == nil && a.lost >= alarmFrom && (a.searched == 0 || st.time.Seconds(a.searched) >= searchAgainS):
+		a.search = s.begins()
+	}
+}
+
+// begins makes the search of the present time.
+func (s *Session) begins() *search {
+	st := &s.state
+	from := max(st.time-sensor.Time(searchBackS*1e9), st.aside.woke)
+	found := s.anywhere(s.events(from, st.time))
+	x := &search{found: found, enter: st.time + sensor.Time(enterAfterS*1e9)}
+	until := st.time
+	work := func() { found.runUntil(until) }
+	if s.beginWork == nil {
+		done := false
+		x.wait = func() {
+			if !done {
+				work()
+				done = true
+			}
+		}
+		return x
+	}
+	x.wait = s.beginWork(work)
+	return x
+}
+
+// events returns those after from, up to until, at most maxSearched of them.
+func (s *Session) events(from, until sensor.Time) []sensor.Event {
+	var all []sensor.Event
+	take := func(evs []sensor.Event) {
+		a := sort.Search(len(evs), func(i int) bool { return evs[i].Time > from })
+		b := sort.Search(len(evs), func(i int) bool { return evs[i].Time > until })
+		if a < b {
+			all = append(all, evs[a:b]...)
+		}
+	}
+	take(s.past)
+	take(s.log.events)
+	return all[max(0, len(all)-maxSearched):]
+}
+
+// anywhere returns a session that is to follow events from anywhere on the map,
+// for nobody to read: it makes no posteriors and keeps no snapshots.
+func (s *Session) anywhere(events []sensor.Event) *Session {
+	never := new(float64)
+	suite := *s.suite
+	suite.Vehicle.LostPerS, suite.Vehicle.MovedPerS = never, never
+	f, err := New(Config{Vehicle: s.vehicle, Space: s.space, Names: s.names, Suite: &suite, MaxCells: s.maxCells})
+	if err != nil {
+		panic("session: " + err.Error()) // it has been made before
+	}
+	f.unheard = true
+	for _, ev := range events {
+		f.log.insert(len(f.log.events), ev, f.suite)
+	}
+	return f
+}
+
+// runUntil computes all events up to a time.
+func (s *Session) runUntil(t sensor.Time) {
+	s.until = t
+	s.run(true)
+}
+
+// turnHere keeps the place at which directions are turned into the frame's, which
+// posteriors keep otherwise.
+func (s *Session) turnHere() {
+	st := &s.state
+	if st.time.Seconds(st.posteriorAt) < turnEveryS {
+		return
+	}
+	_, at, _ := st.belief.Moments(s.space, &s.work)
+	st.pose = sensor.Pose{At: at, HeadingVar: sensor.NoHeading}
+	st.evidence, st.posteriorAt = nil, st.time
+}
+
+// turnEveryS: the frame's north turns by less than 0.01° over a kilometre.
+const turnEveryS = 10.0
+
+// fork returns a copy of a search's session that shares nothing that changes.
+func (s *Session) fork() *Session {
+	c := *s
+	c.state = s.state.clone()
+	c.log.events = slices.Clone(s.log.events)
+	c.log.spoke, c.log.voices = slices.Clone(s.log.spoke), slices.Clone(s.log.voices)
+	c.log.sources = slices.Clone(s.log.sources)
+	for i := range c.log.sources {
+		c.log.sources[i].events = slices.Clone(s.log.sources[i].events)
+	}
+	c.work, c.cloud, c.snaps, c.cuts = filter.Workspace{}, filter.Cloud{}, nil, nil
+	c.work.Depart(c.rates.off > 0)
+	c.motion = sensor.Motion{Suite: c.suite}
+	return &c
+}
+
+// letIn gives what a search has found the share of being lost.
+func (s *Session) letIn(x *search) {
+	x.wait()
+	st := &s.state
+	a := &st.aside
+	f := x.found.fork()
+	if len(f.log.events) == 0 {
+		return
+	}
+	for _, ev := range s.events(x.found.until, st.time) {
+		f.log.insert(len(f.log.events), ev, f.suite)
+	}
+	f.runUntil(st.time)
+	if b := f.state.belief; b.Level != st.belief.Level {
+		level := max(b.Level, st.belief.Level)
+		filter.Relevel(b, s.lines, level, &s.work)
+		filter.Relevel(st.belief, s.lines, level, &s.work)
+	}
+	on, lost := a.on(), a.lost
+	found := &f.state.aside
+	if gain := lost * found.off; gain > 0 && found.loose.Len() > 0 {
+		a.loose.Mix(&found.loose, gain/(a.off+gain), mostLoose)
+		a.off += gain
+	}
+	filter.Blend(st.belief, f.state.belief, lost*(1-found.off)/(on+lost*(1-found.off)), s.lines, &s.work)
+	a.lost = 0
+	st.pace.stretches = st.pace.stretches[:0] // the scale is another one, perhaps
+}
