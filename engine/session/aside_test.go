@@ -129,7 +129,7 @@ func TestRatesOfNothing(t *testing.T) {
 // street fits: that it was moved outweighs that it left the map, and the alarm is
 // raised, with protection unbounded for the reason.
 func TestLostInSilence(t *testing.T) {
-	road := straight(5000)
+	road := straight(1000)
 	c := Config{Space: road, Names: road, Start: pointStart(road, geo.Point{N: 100}, 3)}
 	events := northward(20)
 	events = append(events,
@@ -145,8 +145,10 @@ func TestLostInSilence(t *testing.T) {
 			sensor.Event{Time: at(s + 1), Sensor: "gyro", Number: uint64(200 + i), Measurement: sensor.Turn{Since: at(s), AngleRad: angle, SigmaRad: 0.002}})
 	}
 	o := feed(t, open(t, c), events)
+	said := false
 	for _, p := range o.posteriors {
 		since := float64(p.TimeNS-int64(at(0))) / 1e9
+		said = said || p.LostAlarm && p.Lost >= alarmFrom && p.Protection.Reason == summary.ReasonLost
 		if since < 300 && p.Lost > 1e-6 || since > 320 && since < 325 && (p.Lost < 1e-4 || p.Lost > 1e-2) {
 			t.Errorf("after %v s lost is %v", since, p.Lost)
 		}
@@ -157,7 +159,28 @@ func TestLostInSilence(t *testing.T) {
 			t.Errorf("after %v s an alarm", since)
 		}
 	}
-	if last := o.posteriors[len(o.posteriors)-1]; !last.LostAlarm || last.Lost < alarmFrom || last.Protection.Reason != summary.ReasonLost {
-		t.Errorf("at the end lost is %v, off %v, protection %+v", last.Lost, last.OffMap, last.Protection)
+	// The search that follows finds no street either: the vehicle is off the map.
+	if last := o.posteriors[len(o.posteriors)-1]; !said || !last.LostAlarm || last.Status != summary.OffMap {
+		t.Errorf("alarm %v, at the end %v: lost is %v, off %v, protection %+v", said, last.LostAlarm, last.Lost, last.OffMap, last.Protection)
+	}
+	// Half of the events come with the one after them, from the alarm to beyond
+	// where the search enters.
+	late := append([]sensor.Event(nil), events...)
+	for i := 1; i+1 < len(late); i += 4 {
+		if late[i].Time != at(320) && late[i+1].Time != at(320) {
+			late[i], late[i+1] = late[i+1], late[i]
+		}
+	}
+	if again := feed(t, open(t, c), late); again.hash != o.hash {
+		t.Error("another order of arrival gives another hash")
+	}
+	elsewhere := c
+	elsewhere.Begin = func(work func()) (wait func()) {
+		done := make(chan struct{})
+		go func() { work(); close(done) }()
+		return func() { <-done }
+	}
+	if again := feed(t, open(t, elsewhere), events); again.hash != o.hash {
+		t.Error("a search in another goroutine gives another hash")
 	}
 }
