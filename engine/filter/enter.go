@@ -39,6 +39,9 @@ const (
 	enterMostM  = 100.0
 	// beyondM is how far beyond a line's end a vehicle still is beside it.
 	beyondM = 1.0
+	// leastEntry is the mass below which nothing comes onto a line, since of what
+	// it would be cut into, much would be too little to keep (Floor): it stays off.
+	leastEntry = 1e-7
 )
 
 // Enter moves mass of l onto lines near by. Of a Gaussian whose place is D off a
@@ -82,7 +85,7 @@ func (l *Loose) Enter(b *Belief, space Nearby, e Entry, on, off float64, w *Work
 				continue
 			}
 			piece, weight := g.onLine(k, heading, &w.at, j, e)
-			if weight*e.Hazard < 1e-9 {
+			if off*g.mass*weight*e.Hazard < leastEntry {
 				continue
 			}
 			at = places[j]

@@ -35,7 +35,7 @@ func OffRoads(ev Event, ctx Context) (ls []any, flat float64) {
 // not. Each is one for motions, which say the same everywhere.
 func Elsewhere(ev Event, ctx Context, areaM2 float64) float64 {
 	d := ctx.Suite.Sensor(ev.Sensor, ev.Measurement.Kind())
-	log := 0.0
+	var log float64
 	switch m := ev.Measurement.(type) {
 	case HeadingFix, Bearing, AcousticBearing:
 		log = kernel.Log(1 / (2 * math.Pi))

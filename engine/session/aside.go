@@ -202,7 +202,8 @@ func (s *Session) weighAside(ev sensor.Event, l any, way bool, on float64) float
 	if a.off == 0 && a.lost == 0 {
 		return on
 	}
-	off, lost := math.Inf(-1), 0.0
+	off := math.Inf(-1)
+	var lost float64
 	if way {
 		linear, _ := l.(filter.LinearLikelihood)
 		lost = sensor.WayElsewhere(linear, s.state.bend, s.motion.TravelledM())
