@@ -7,6 +7,7 @@ import (
 	"io"
 	"math"
 	"net"
+	"os"
 	"strings"
 	"sync/atomic"
 	"time"
@@ -50,6 +51,9 @@ A source that is lost is opened again. SIGINT or SIGTERM ends the feed: what was
 heard is sent, and the drive is ended. A second signal stops at once.`,
 		Args: cobra.ExactArgs(1),
 		RunE: func(c *cobra.Command, args []string) error {
+			if err := knownSource(args[0]); err != nil {
+				return err
+			}
 			if livelog.Is(args[0]) {
 				return o.live(c, args[0])
 			}
@@ -68,6 +72,18 @@ heard is sent, and the drive is ended. A second signal stops at once.`,
 	o.liveOptions.flags(c)
 	settable(c, "to=server")
 	return c
+}
+
+// knownSource refuses what looks like a source of instruments and is none.
+func knownSource(text string) error {
+	kind, _, ok := strings.Cut(text, ":")
+	if !ok || livelog.Is(text) || strings.ContainsAny(kind, `/\.`) || len(kind) < 2 {
+		return nil
+	}
+	if _, err := os.Stat(text); err == nil {
+		return nil
+	}
+	return fmt.Errorf("%s: %q is no kind of source: give serial:DEVICE, tcp:HOST:PORT, udp:HOST:PORT, or the path of a drive file", text, kind)
 }
 
 func feed(c *cobra.Command, o *feedOptions, path string) error {
@@ -218,7 +234,9 @@ func checkAddress(flag, address string) error {
 // could not be reached.
 func serverError(err error, address string) error {
 	if why, ok := client.WhyOf(err); ok {
-		return fmt.Errorf("%s (%s)", oneLine(why.Message), reasonName(why.Reason))
+		// What a program sets in a request, a person says by a flag.
+		message := strings.ReplaceAll(oneLine(why.Message), "set replace", "give --replace")
+		return fmt.Errorf("%s (%s)", message, reasonName(why.Reason))
 	}
 	st, ok := status.FromError(err)
 	if !ok {

@@ -70,8 +70,8 @@ func (o *followOptions) request(c *cobra.Command, vehicles []string) (*leadlinev
 		return nil, fmt.Errorf("--detail is %q: give summary, modes, region or belief", o.detail)
 	}
 	for _, percent := range o.regions {
-		if !(percent > 0 && percent < 100) {
-			return nil, fmt.Errorf("--region is %v: give a percentage above 0 and below 100", percent)
+		if err := checkRegion(percent); err != nil {
+			return nil, err
 		}
 		req.RegionFractions = append(req.RegionFractions, percent/100)
 	}

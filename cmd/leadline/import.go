@@ -145,6 +145,9 @@ func (o *importOptions) reader(path string) (readLog, error) {
 		if err != nil && !errors.Is(err, io.EOF) {
 			return nil, err
 		}
+		if len(bytes.TrimSpace(head)) == 0 {
+			return nil, fmt.Errorf("%s is empty: nothing was logged", path)
+		}
 		if !bytes.ContainsAny(head, "$!") {
 			return nil, fmt.Errorf("%s holds no NMEA sentence where it begins: say with --columns what the columns of a table are", path)
 		}
@@ -216,7 +219,7 @@ func passedOver(t *logfile.Tally, before string) string {
 func (o *importOptions) print(w io.Writer, t *logfile.Tally) error {
 	fmt.Fprintf(w, "%s: %d measurements and %d truths from %d lines of %s\n", o.out, t.Usable(), t.Truths, t.Lines, t.Log)
 	printTally(w, t)
-	next := "leadline replay " + o.out
+	next := programName() + " replay " + shellWord(o.out)
 	if o.mapName == "" {
 		next += " --map MAP"
 	}

@@ -34,9 +34,7 @@ func run(args []string, out, errs io.Writer) int {
 	if err == nil {
 		return exitDone
 	}
-	if strings.HasPrefix(err.Error(), "required flag(s)") { // cobra's own, which says no more
-		err = fmt.Errorf("%w; see `%s --help`", err, c.CommandPath())
-	}
+	err = usageError(c, err)
 	fmt.Fprintln(errs, "leadline: "+oneLine(err.Error()))
 	var f failure
 	if errors.As(err, &f) {
@@ -62,38 +60,11 @@ Exit status: 0 done, 1 the answer is a failure, 2 wrong use or bad input.`,
 		CompletionOptions: cobra.CompletionOptions{HiddenDefaultCmd: true},
 	}
 	root.SetVersionTemplate("leadline {{.Version}}\n")
-	root.SetFlagErrorFunc(func(c *cobra.Command, err error) error {
-		return fmt.Errorf("%w; see `%s --help`", err, c.CommandPath())
-	})
+	root.SetFlagErrorFunc(flagError)
 	root.AddCommand(mapCommand(), importCommand(), replayCommand(), serveCommand(), feedCommand(), whereCommand(), followCommand(), vehiclesCommand(), endCommand(), demoCommand(), suiteCommand(), versionCommand())
 	takeSettings(root)
-	for _, c := range append(root.Commands(), root) {
-		helpForWrongArgs(c)
-	}
+	helpForWrongArgs(root)
 	return root
-}
-
-// helpForWrongArgs ends complaints about arguments with where to look.
-func helpForWrongArgs(c *cobra.Command) {
-	for _, sub := range c.Commands() {
-		if sub.HasSubCommands() {
-			helpForWrongArgs(sub)
-		}
-	}
-	check := c.Args
-	if check == nil {
-		check = cobra.NoArgs
-	}
-	c.Args = func(c *cobra.Command, args []string) error {
-		if err := check(c, args); err != nil {
-			first, _, _ := strings.Cut(err.Error(), "\n")
-			return fmt.Errorf("%s; see `%s --help`", first, c.CommandPath())
-		}
-		return nil
-	}
-	if c.HasSubCommands() && c.Run == nil && c.RunE == nil {
-		c.RunE = func(c *cobra.Command, _ []string) error { return c.Help() }
-	}
 }
 
 // oneLine makes a line of a message, whatever a file brought into it.

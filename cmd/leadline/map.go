@@ -35,6 +35,9 @@ func mapCheckCommand() *cobra.Command {
 				return err
 			}
 			defer m.Close()
+			if png != "" && !strings.EqualFold(filepath.Ext(png), ".png") {
+				return fmt.Errorf("--png %s: the picture is a PNG: give a name that ends in .png", png)
+			}
 			if png != "" {
 				if err := writeFile(png, m.picture); err != nil {
 					return err

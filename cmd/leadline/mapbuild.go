@@ -25,6 +25,12 @@ func mapRoadsCommand() *cobra.Command {
 			if err := needSuffix(out, roadfile.Suffix); err != nil {
 				return err
 			}
+			if !(o.Map.CellM >= 0.05 && o.Map.CellM <= 1000) {
+				return fmt.Errorf("--cell is %v: give metres, 0.05 to 1000", o.Map.CellM)
+			}
+			if !(o.Map.UTurnWeight >= 0 && o.Map.UTurnWeight < 1) {
+				return fmt.Errorf("--u-turns is %v: give a probability, 0 or more and below 1", o.Map.UTurnWeight)
+			}
 			if o.JoinM == 0 {
 				o.JoinM = -1 // given as 0: join nothing; the default is not 0
 			}
@@ -56,7 +62,7 @@ func mapRoadsCommand() *cobra.Command {
 			_, strongM := m.Core()
 			fmt.Fprintf(w, "%s: %d directed edges; the largest strongly connected part has %.1f km of them; %.1f s\n",
 				out, m.Charts(), strongM/1000, time.Since(began).Seconds())
-			fmt.Fprintf(w, "next: leadline map check %s --png %s\n", out, mapName(out)+".png")
+			fmt.Fprintf(w, "next: %s map check %s --png %s\n", programName(), shellWord(out), shellWord(mapName(out)+".png"))
 			return nil
 		},
 	}
@@ -117,7 +123,7 @@ func mapHeightsCommand() *cobra.Command {
 				fmt.Fprintln(w, "note: the vertical datum is UNSTATED: give it with --datum if you know it")
 			}
 			fmt.Fprintf(w, "%s: %s, %d × %d samples; %.1f s\n", out, res.Format, g.Cols, g.Rows, time.Since(began).Seconds())
-			fmt.Fprintf(w, "next: leadline map check %s --png %s\n", out, mapName(out)+".png")
+			fmt.Fprintf(w, "next: %s map check %s --png %s\n", programName(), shellWord(out), shellWord(mapName(out)+".png"))
 			return nil
 		},
 	}

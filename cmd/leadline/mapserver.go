@@ -1,6 +1,7 @@
 package main
 
 import (
+	"cmp"
 	"context"
 	"fmt"
 	"io"
@@ -13,6 +14,7 @@ import (
 
 	"leadline/engine/client"
 	leadlinev1 "leadline/proto/leadline/v1"
+	"leadline/terrain"
 	"leadline/terrain/heightfile"
 )
 
@@ -66,7 +68,7 @@ func mapSize(m *leadlinev1.MapDescription) string {
 }
 
 func vehiclesOn(m *leadlinev1.MapDescription) string {
-	text := fmt.Sprintf("%d drives on it", m.GetSessions())
+	text := count(int(m.GetSessions()), "drive") + " on it"
 	if n := m.GetOlderSessions(); n > 0 {
 		text += fmt.Sprintf(", %d on an older one", n)
 	}
@@ -88,8 +90,8 @@ func printMap(w io.Writer, m *leadlinev1.MapDescription) {
 		}
 		line("heights", "above %s, %s", d, sigma)
 	}
-	line("source", "%s", m.GetSource())
-	line("licence", "%s", m.GetLicence())
+	line("source", "%s", cmp.Or(m.GetSource(), terrain.Unstated))
+	line("licence", "%s", cmp.Or(m.GetLicence(), terrain.Unstated))
 	line("in use", "%s", vehiclesOn(m))
 }
 
@@ -136,6 +138,10 @@ func sendMap(c *cobra.Command, at, path, name string, replace bool) error {
 	defer conn.Close()
 	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
 	defer stop()
+	done := "uploaded"
+	if before, err := leadlinev1.NewPositionServiceClient(conn).DescribeMap(ctx, &leadlinev1.DescribeMapRequest{Map: b.Name}); err == nil && replace {
+		done = "uploaded, in place of the one with the fingerprint " + before.GetMap().GetFingerprint()
+	}
 	show, end := progress(c.ErrOrStderr(), b.Name)
 	sent, err := client.SendMap(ctx, conn, b, file, func(sent, of int64) {
 		if show != nil {
@@ -146,6 +152,7 @@ func sendMap(c *cobra.Command, at, path, name string, replace bool) error {
 	if err != nil {
 		return fmt.Errorf("%s: %w", path, serverError(err, at))
 	}
+	fmt.Fprintf(c.OutOrStdout(), "%s is %s\n", b.Name, done)
 	printMap(c.OutOrStdout(), sent)
 	return nil
 }

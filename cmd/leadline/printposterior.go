@@ -68,7 +68,7 @@ func printPosterior(w io.Writer, p *leadlinev1.Posterior) {
 		line("road", "%.1f %% %s (edge %d)", 100*e.GetProbability(), name, e.GetEdge())
 	}
 	for i, m := range p.GetModes() {
-		if i == 3 || len(p.GetModes()) == 1 {
+		if i == 3 || len(p.GetModes()) == 1 || m.GetMass() < 0.0005 { // 0.0 %
 			break
 		}
 		line("mode", "%.1f %% around lon %.6f, lat %.6f", 100*m.GetMass(), m.GetMean().GetLon(), m.GetMean().GetLat())
@@ -117,17 +117,34 @@ func alarmText(a *leadlinev1.Alarm) string {
 
 // age words how old an answer is, by the server's clock.
 func age(s float64) string {
-	switch {
-	case s < 0:
-		return fmt.Sprintf("%.1f s ahead of the server's clock", -s)
-	case s < 120:
-		return fmt.Sprintf("%.1f s ago", s)
-	case s < 2*3600:
-		return fmt.Sprintf("%.0f minutes ago", s/60)
-	case s < 48*3600:
-		return fmt.Sprintf("%.0f hours ago", s/3600)
+	if s < 0 {
+		return span(-s) + " ahead of the server's clock"
 	}
-	return fmt.Sprintf("%.0f days ago", s/86400)
+	return span(s) + " ago"
+}
+
+// span words a time that has passed.
+func span(s float64) string {
+	const day, year = 86400, 365.25 * 86400
+	switch {
+	case s < 120:
+		return fmt.Sprintf("%.1f s", s)
+	case s < 2*3600:
+		return fmt.Sprintf("%.0f minutes", s/60)
+	case s < 2*day:
+		return fmt.Sprintf("%.0f hours", s/3600)
+	case s < 2*year:
+		return fmt.Sprintf("%.0f days", s/day)
+	}
+	return fmt.Sprintf("%.1f years", s/year)
+}
+
+// count is a number of things.
+func count(n int, what string) string {
+	if n == 1 {
+		return "1 " + what
+	}
+	return fmt.Sprintf("%d %ss", n, what)
 }
 
 func durability(p *leadlinev1.Posterior) string {

@@ -208,6 +208,7 @@ func (r *rehearsal) serve() (err error) {
 		_, stopped := srv.stop(5 * time.Second)
 		err = errors.Join(err, stopped)
 	}()
+	r.say("   $ %s   # here within this program, at a free port\n", r.line(append(r.serveArgs(), "--listen", srv.address)...))
 	for _, s := range r.Scenes {
 		began := time.Now()
 		text, err := r.command("feed", s.DriveFile, "--to", srv.address, "--json")

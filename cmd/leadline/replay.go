@@ -1,6 +1,8 @@
 package main
 
 import (
+	"bufio"
+	"bytes"
 	"errors"
 	"fmt"
 	"io"
@@ -58,8 +60,8 @@ func replayCommand() *cobra.Command {
 }
 
 func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
-	if o.maxCells < 0 {
-		return fmt.Errorf("--max-cells is %d: it must be positive", o.maxCells)
+	if o.maxCells < 1 {
+		return fmt.Errorf("--max-cells is %d: give a whole number, 1 or more", o.maxCells)
 	}
 	if err := o.checkStudies(); err != nil {
 		return err
@@ -215,7 +217,29 @@ func readDrive(path string) (*drivefile.Drive, error) {
 		return nil, err
 	}
 	defer f.Close()
-	return drivefile.ReadAll(f, path)
+	b := bufio.NewReader(f)
+	if err := startsAsDrive(b, path); err != nil {
+		return nil, err
+	}
+	return drivefile.ReadAll(b, path)
+}
+
+// startsAsDrive tells logs of other kinds from drive files, whose lines begin
+// with a brace.
+func startsAsDrive(b *bufio.Reader, path string) error {
+	head, err := b.Peek(512)
+	if err != nil && !errors.Is(err, io.EOF) {
+		return fmt.Errorf("%s: %w", path, err)
+	}
+	head = bytes.TrimLeft(head, " \t\r\n\ufeff")
+	if strings.HasSuffix(path, drivefile.Suffix) || len(head) == 0 || head[0] == '{' {
+		return nil
+	}
+	how := "--columns COLUMNS.yaml "
+	if head[0] == '$' || head[0] == '!' || head[0] == '\\' {
+		how = ""
+	}
+	return fmt.Errorf("%s is no drive file: make one of a log with `leadline import %s %s-o %s%s --vehicle NAME`", path, path, how, driveName(path), drivefile.Suffix)
 }
 
 // driveName is a drive file's name without folder and suffix.

@@ -70,12 +70,28 @@ Nothing is durable yet: a server that stops forgets its vehicles.`,
 	return c
 }
 
+// checkBounds wants numbers of at least one.
+func (o *serveOptions) checkBounds() error {
+	for _, b := range []struct {
+		flag string
+		v    int
+	}{{"max-vehicles", o.vehicles}, {"max-cells", o.maxCells}} {
+		if b.v < 1 {
+			return fmt.Errorf("--%s is %d: give a whole number, 1 or more", b.flag, b.v)
+		}
+	}
+	return nil
+}
+
 func serve(c *cobra.Command, o *serveOptions) error {
 	if o.printConfig {
 		return printConfig(c.OutOrStdout(), c)
 	}
 	if len(o.maps) == 0 && o.uploads == "" {
 		return errors.New("no map to serve: give --map NAME=FILE, LEADLINE_MAP, or map in the file of settings; see `leadline serve --help`")
+	}
+	if err := o.checkBounds(); err != nil {
+		return err
 	}
 	log := logger(c.ErrOrStderr(), o.logFormat.word, o.logLevel.word)
 	if names := unknownVariables(c.Root()); len(names) > 0 {

@@ -43,11 +43,22 @@ func whereCommand() *cobra.Command {
 	return c
 }
 
+// checkRegion wants a percentage; below 1 a fraction was meant.
+func checkRegion(percent float64) error {
+	switch {
+	case percent > 0 && percent < 1:
+		return fmt.Errorf("--region is %v: it is a percentage, 1 or more and below 100: for the fraction %v give %v", percent, percent, 100*percent)
+	case !(percent > 0 && percent < 100):
+		return fmt.Errorf("--region is %v: give a percentage, 1 or more and below 100", percent)
+	}
+	return nil
+}
+
 func where(c *cobra.Command, o *whereOptions, vehicles []string) error {
 	req := &leadlinev1.WhereRequest{Vehicles: vehicles, PredictToNow: o.now}
 	for _, percent := range o.regions {
-		if !(percent > 0 && percent < 100) {
-			return fmt.Errorf("--region is %v: give a percentage above 0 and below 100", percent)
+		if err := checkRegion(percent); err != nil {
+			return err
 		}
 		req.RegionFractions = append(req.RegionFractions, percent/100)
 	}
@@ -106,7 +117,7 @@ func (o *whereOptions) print(w io.Writer, answer *leadlinev1.WhereAnswer) {
 		fmt.Fprintf(w, "  %-14s %.1f s beyond the last measurement, by how the vehicle may move\n", "carried on", s)
 	}
 	for _, r := range p.GetRegions() {
-		fmt.Fprintf(w, "  %-14s %.4g %% within %.0f m² in %d pieces (polygons with --json)\n", "region", 100*r.GetProbability(), r.GetAreaM2(), len(r.GetPolygons()))
+		fmt.Fprintf(w, "  %-14s %.4g %% within %.0f m² in %s (polygons with --json)\n", "region", 100*r.GetProbability(), r.GetAreaM2(), count(len(r.GetPolygons()), "piece"))
 	}
 	if p.AreaProbability != nil {
 		fmt.Fprintf(w, "  %-14s %.4g %% inside %s\n", "area", 100*p.GetAreaProbability(), o.area)
