@@ -56,32 +56,45 @@ func explainedTime(text string, start sensor.Time) (sensor.Time, error) {
 	return sensor.Time(t.UnixNano()), nil
 }
 
-// study looks at a replay, tries usual mistakes if it is suspect, and explains
-// the time that was asked for.
-func (o *replayOptions) study(errs io.Writer, r *driveRun, path string) (*studies, error) {
-	out := &studies{}
-	var err error
-	if out.Findings, err = diagnose.Look(r.result, r.record, r.track.Truth, r.drive.Events, r.config); err != nil {
+// look looks at a replay.
+func look(r *driveRun, path string) (*studies, error) {
+	f, err := diagnose.Look(r.result, r.record, r.track.Truth, r.drive.Events, r.config)
+	if err != nil {
 		return nil, fmt.Errorf("%s: %w", path, err)
 	}
-	if o.diagnose == diagnoseAlways || o.diagnose == diagnoseAuto && len(out.Findings.Reasons) > 0 {
+	return &studies{Findings: f}, nil
+}
+
+// tries reports whether usual mistakes are tried.
+func (o *replayOptions) tries(f *diagnose.Findings) bool {
+	return !f.Misplaced && (o.diagnose == diagnoseAlways || o.diagnose == diagnoseAuto && len(f.Reasons) > 0)
+}
+
+// study tries usual mistakes if a replay is suspect, and explains the time that
+// was asked for.
+func (o *replayOptions) study(errs io.Writer, out *studies, r *driveRun, path string) (err error) {
+	if o.tries(out.Findings) {
 		show, end := progress(errs, driveName(path)+", usual mistakes")
-		out.Diagnosis, err = diagnose.Run(r.drive, r.config, diagnose.Options{Grids: r.m.grids(), Each: eachAtOnce, Progress: show})
+		how := diagnose.Options{Grids: r.m.grids(), Each: eachAtOnce, Progress: show}
+		if o.diagnose == diagnoseAuto {
+			how.Beside = r.record
+		}
+		out.Diagnosis, err = diagnose.Run(r.drive, r.config, how)
 		end()
 		if err != nil {
-			return nil, fmt.Errorf("%s: trying usual mistakes: %w", path, err)
+			return fmt.Errorf("%s: trying usual mistakes: %w", path, err)
 		}
 	}
 	if o.explain != "" {
 		at, err := explainedTime(o.explain, r.result.Start)
 		if err != nil {
-			return nil, err
+			return err
 		}
 		if out.Explanation, err = diagnose.Explain(r.drive, r.config, at, o.explainWithin.Seconds()); err != nil {
-			return nil, fmt.Errorf("%s: --explain %s: %w", path, o.explain, err)
+			return fmt.Errorf("%s: --explain %s: %w", path, o.explain, err)
 		}
 	}
-	return out, nil
+	return nil
 }
 
 // grids is the grid of a height map that is in a projection.

@@ -168,3 +168,20 @@ func TestGridOfMap(t *testing.T) {
 		t.Errorf("roads have %d grids", len(got))
 	}
 }
+
+// TestWrongMap: a drive over roads on a height map is refused whole: the reason
+// is said at once, and no mistake is tried, even if that is asked for.
+func TestWrongMap(t *testing.T) {
+	t.Parallel()
+	dir := t.TempDir()
+	hills := filepath.Join(dir, "hills.heights.tif")
+	good(t, "map", "heights", reliefASCII(t, filepath.Join(dir, "relief.asc")), "-o", hills, "--crs", "EPSG:4326")
+	drive := writeText(t, filepath.Join(dir, "van.drive.jsonl"), strings.Replace(head, `"lon":-30,"lat":45`, `"lon":-29.89,"lat":44.89`, 1)+travel)
+	for _, mode := range []string{"auto", "always"} {
+		out, _, status := leadline(t, "replay", drive, "--map", hills, "--diagnose", mode, "--allow-refused")
+		if status != 0 || !strings.Contains(out, "all 1 measurements are refused: this is a height map") || !strings.Contains(out, "(travel)") ||
+			strings.Contains(out, "mistakes") || strings.Contains(out, "never located") {
+			t.Errorf("%s: status %d\n%s", mode, status, out)
+		}
+	}
+}

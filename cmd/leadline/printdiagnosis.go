@@ -13,8 +13,8 @@ import (
 // all.
 const shownMistakes = 10
 
-// print prints what a person wants to know of why a drive went as it did.
-func (s *studies) print(w io.Writer) error {
+// printFindings prints what speaks for a mistake.
+func (s *studies) printFindings(w io.Writer) error {
 	var b strings.Builder
 	for _, r := range s.Findings.Reasons {
 		fmt.Fprintf(&b, "  %-12s %s\n", "suspect", r)
@@ -22,6 +22,13 @@ func (s *studies) print(w io.Writer) error {
 	for _, n := range s.Findings.Beyond {
 		fmt.Fprintf(&b, "  %-12s %s ends at %.4g ± %.2g, %+.1f sigma of its prior: %s\n", "estimated", n.Name, n.Mean, n.Sigma, n.PriorSigmas, n.Suggests)
 	}
+	_, err := io.WriteString(w, b.String())
+	return err
+}
+
+// print prints what a person wants to know of why a drive went as it did.
+func (s *studies) print(w io.Writer) error {
+	var b strings.Builder
 	if s.Diagnosis != nil {
 		printMistakes(&b, s.Diagnosis)
 	}
@@ -35,21 +42,28 @@ func (s *studies) print(w io.Writer) error {
 func printMistakes(b *strings.Builder, r *diagnose.Report) {
 	fmt.Fprintf(b, "  %-12s the first %.0f s, %d measurements, again with each usual mistake undone (%d, in %.1f s)\n",
 		"mistakes", r.OpeningS, r.Measurements, r.Tried, r.TookS)
+	if r.CutShort {
+		fmt.Fprintf(b, "  %-12s more of the drive would take too long beside its replay; `--diagnose always` takes up to a minute of one core\n", "")
+	}
 	if r.BaseGivenUpAfter != nil {
 		fmt.Fprintf(b, "  %-12s the log as it stands was given up after %.0f s, far behind: gains are at least what they say\n", "", *r.BaseGivenUpAfter)
 	}
 	t := tabwriter.NewWriter(b, 0, 8, 2, ' ', tabwriter.AlignRight)
-	fmt.Fprint(t, "\tgain, nats\tgiven up after\t  mistake\n")
+	fmt.Fprint(t, "\tgain, nats\tgiven up, far behind, after\t  mistake\n")
 	for i, k := range r.Candidates {
 		if i == shownMistakes {
 			fmt.Fprintf(t, "\t\t\t  and %d more\n", len(r.Candidates)-i)
 			break
 		}
-		after := ""
-		if k.GivenUpAfter != nil {
-			after = fmt.Sprintf("%.0f s", *k.GivenUpAfter)
+		if k.GivenUpAfter != nil { // its gain is of a part, and far behind the best there
+			fmt.Fprintf(t, "\t\t%.0f s\t  %s\n", *k.GivenUpAfter, k.Text())
+			continue
 		}
-		fmt.Fprintf(t, "\t%+.1f\t%s\t  %s\n", k.GainNats, after, k.Text())
+		against := ""
+		if len(k.Suspect) > 0 && k.GainNats >= r.NeededNats {
+			against = "; but " + strings.Join(k.Suspect, ", ")
+		}
+		fmt.Fprintf(t, "\t%+.1f\t\t  %s%s\n", k.GainNats, k.Text(), against)
 	}
 	t.Flush()
 	fmt.Fprintf(b, "  %-12s %s\n", "verdict", r.Verdict)

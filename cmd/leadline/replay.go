@@ -91,19 +91,7 @@ func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
 				return err
 			}
 		}
-		why, err := o.study(c.ErrOrStderr(), run, path)
-		if err != nil {
-			return err
-		}
-		if o.asJSON {
-			err = printJSONLine(c.OutOrStdout(), struct {
-				*score.Score
-				*studies
-			}{run.score, why})
-		} else {
-			err = errors.Join(printScore(c.OutOrStdout(), run.score, run.result), why.print(c.OutOrStdout()))
-		}
-		if err != nil {
+		if err := o.say(c, run, path); err != nil {
 			return err
 		}
 		if n := run.result.Refused; n > 0 && refused == nil && !o.allowRefused {
@@ -112,6 +100,31 @@ func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
 		}
 	}
 	return refused
+}
+
+// say prints a run's score and what its studies find. A person reads what is
+// known before the studies begin, which take longer than the replay.
+func (o *replayOptions) say(c *cobra.Command, run *driveRun, path string) error {
+	out := c.OutOrStdout()
+	why, err := look(run, path)
+	if err != nil {
+		return err
+	}
+	if !o.asJSON {
+		if err := errors.Join(printScore(out, run.score, run.result), why.printFindings(out)); err != nil {
+			return err
+		}
+	}
+	if err := o.study(c.ErrOrStderr(), why, run, path); err != nil {
+		return err
+	}
+	if o.asJSON {
+		return printJSONLine(out, struct {
+			*score.Score
+			*studies
+		}{run.score, why})
+	}
+	return why.print(out)
 }
 
 // driveRun is a drive that was replayed.

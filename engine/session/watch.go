@@ -22,6 +22,9 @@ type Change struct {
 	LogEvidence float64
 	// Fell is where it fell in what was expected, if the monitor looked at it.
 	Fell filter.Predictive
+	// Cells is how many cells or Gaussians carry mass after it: about what it
+	// cost.
+	Cells int
 }
 
 // Watch has f called after each move and each weighing of the belief, as they
@@ -50,6 +53,7 @@ func (s *Session) Rest() {
 
 func (s *Session) watched(c Change) {
 	if s.watch != nil {
+		c.Cells = s.Size()
 		s.watch(c)
 	}
 }

@@ -70,8 +70,6 @@ func (v voice) directed() bool {
 	return false
 }
 
-const foot = 0.3048 // m, international
-
 // catalogue lists the usual mistakes that a log may hold, but for those with a
 // value to be found (offsets, angles).
 func catalogue(vs []voice) []Mistake {
@@ -148,49 +146,6 @@ func (v voice) signs() []Mistake {
 		}}
 	}
 	return nil
-}
-
-// units are numbers in another unit than the log's.
-func (v voice) units() []Mistake {
-	type of struct {
-		name     string
-		p        part
-		measured bool
-	}
-	var parts []of
-	lengths := false
-	switch v.kind {
-	case sensor.KindTravel, sensor.KindDisplacement, sensor.KindBodyDisplacement:
-		parts, lengths = []of{{"distances", distance, false}}, true
-	case sensor.KindSpeed:
-		parts, lengths = []of{{"speeds", distance, false}}, true
-	case sensor.KindClearance:
-		parts = []of{{"altitude and clearance", altitude | clearance, true}, {"altitude", altitude, false}, {"clearance", clearance, true}}
-	case sensor.KindBarometer:
-		if v.pressure {
-			return nil
-		}
-		parts = []of{{"altitude", altitude, true}}
-	case sensor.KindSounding:
-		parts = []of{{"depths", depth, true}}
-	}
-	var out []Mistake
-	add := func(o of, what string, f float64, remedy string) {
-		out = append(out, v.factor(o.name+" "+what, o.p, f, o.measured, remedy))
-	}
-	for _, o := range parts {
-		add(o, "ten times too large", 0.1, "divide by 10")
-		add(o, "ten times too small", 10, "multiply by 10")
-		if v.kind == sensor.KindSpeed {
-			add(o, "in kilometres an hour", 1/3.6, "divide by 3.6")
-			add(o, "in knots", 1852.0/3600, "multiply by 0.5144")
-		}
-		if !lengths {
-			add(o, "in feet", foot, "multiply by 0.3048; or the map's metres were compiled as feet")
-			add(o, "in metres, but converted as if from feet", 1/foot, "divide by 0.3048; or the map's feet were compiled as metres")
-		}
-	}
-	return out
 }
 
 // shiftS is how early or late a clock is tried.

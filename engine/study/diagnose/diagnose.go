@@ -29,8 +29,13 @@ type Options struct {
 	// Each runs f for 0 to n-1, at once if it likes; nil: one after the other.
 	// No result depends on it.
 	Each func(n int, f func(i int))
-	// Progress, if set, is called now and then, and at the end with done =
-	// total; the steps do not take equally long.
+	// Beside is the record of the drive's replay where the diagnosis is made
+	// unasked: it then takes at most sixty times as long (budget.go), and no
+	// more than a minute of one core in any case. It tries less of the drive
+	// if it must.
+	Beside *Record
+	// Progress, if set, is called now and then, one call at a time, and at the
+	// end with done = total; the steps do not take equally long.
 	Progress func(done, total int)
 }
 
@@ -45,6 +50,8 @@ type Grid struct {
 type Report struct {
 	OpeningS     float64 `json:"opening_s"`
 	Measurements int     `json:"measurements"`
+	// CutShort: more of the drive would have taken too long.
+	CutShort bool `json:"cut_short"`
 	// Tried is how many mistakes were tried, each value that was looked for
 	// counted; NeededNats the gain from which one is named (see verdict.go).
 	Tried      int     `json:"tried"`
@@ -69,10 +76,11 @@ type Candidate struct {
 	// grows if it is undone; of one that was given up, until then.
 	GainNats     float64  `json:"gain_nats"`
 	GivenUpAfter *float64 `json:"given_up_after_s"`
-	// Bad lists the sensors that fit badly although it is undone.
-	Bad    []string `json:"bad,omitempty"`
-	Named  bool     `json:"named"`
-	Remedy string   `json:"remedy,omitempty"`
+	// Suspect says what makes the log suspect even though it is undone: it then
+	// does not explain the log and is not named.
+	Suspect []string `json:"suspect,omitempty"`
+	Named   bool     `json:"named"`
+	Remedy  string   `json:"remedy,omitempty"`
 
 	mistake  *Mistake
 	eligible bool // it came to the end, and is large enough for a mistake
@@ -92,9 +100,16 @@ func Run(d *drivefile.Drive, c session.Config, o Options) (*Report, error) {
 	if err != nil {
 		return nil, err
 	}
-	r := &Report{Measurements: len(k.events), OpeningS: k.rounds[len(k.rounds)-1].Seconds(k.start)}
+	r := &Report{}
 	if err := k.tryAll(r, o); err != nil {
 		return nil, err
+	}
+	end := k.rounds[len(k.rounds)-1]
+	r.OpeningS, r.CutShort = end.Seconds(k.start), k.isCut
+	for _, ev := range k.events {
+		if ev.Time <= end {
+			r.Measurements++
+		}
 	}
 	r.TookS = time.Since(began).Seconds()
 	return r, nil
@@ -119,7 +134,7 @@ func newCourse(d *drivefile.Drive, c session.Config, o Options) (*course, error)
 		}
 	}
 	c.MaxCells = o.MaxCells
-	k := &course{config: c, each: o.Each, start: events[0].Time, tick: func() {}}
+	k := &course{config: c, each: o.Each, start: events[0].Time, tick: func(int, float64) {}, budget: budgetOf(o.Beside)}
 	for _, ev := range events {
 		if since, ok := sensor.Since(ev.Measurement); ok {
 			k.start = min(k.start, since)

@@ -20,6 +20,8 @@ type Findings struct {
 	// Reasons are what speaks for a mistake, in words; none if the run is
 	// neither contradicted nor unlocated nor wrong.
 	Reasons []string `json:"reasons"`
+	// Misplaced: the map is of the wrong kind, so that no mistake need be tried.
+	Misplaced bool `json:"misplaced"`
 	// Fits say how each sensor's measurements fit the run.
 	Fits []Fit `json:"fits"`
 	// Beyond are what was estimated along the way and left its prior.
@@ -48,11 +50,11 @@ const wrongShare = 0.2
 const refusedShare = 0.1
 
 // Look reads a replay. record watched it (replay.Options.Watch); truth may be
-// empty; c is what it ran with.
+// empty; c is what it ran with. What no mistake that is
+// undone can cure comes first.
 func Look(res *replay.Result, record *Record, truth []score.Truth, events []sensor.Event, c session.Config) (*Findings, error) {
 	f := &Findings{Reasons: []string{}, Fits: record.fits(math.MinInt64), Beyond: []Beyond{}}
-	say := func(format string, args ...any) { f.Reasons = append(f.Reasons, fmt.Sprintf(format, args...)) }
-	contradicted, located, first := 0, 0, 0.0
+	var o outcomes
 	var isolated []string
 	seen := map[monitor.Key]bool{}
 	for _, p := range res.Posteriors {
@@ -62,36 +64,33 @@ func Look(res *replay.Result, record *Record, truth []score.Truth, events []sens
 				isolated = append(isolated, fmt.Sprintf("%s (%s) disagrees with the others and is isolated from %.0f s after the start on", a.Key.Sensor, a.Key.Kind, sensor.Time(a.RaisedNS).Seconds(res.Start)))
 			}
 		}
-		switch p.Status {
-		case summary.Contradicted:
-			if contradicted++; contradicted == 1 {
-				first = sensor.Time(p.TimeNS).Seconds(res.Start)
-			}
-		case summary.Located:
-			located++
-		}
+		o = append(o, outcome{p.TimeNS, p.Status})
 	}
-	if contradicted > 0 {
-		say("it is contradicted %.0f s after the start", first)
-	}
+	f.Reasons = append(f.Reasons, o.suspicions(res.Start, math.MinInt64)...)
 	f.Reasons = append(f.Reasons, isolated...)
-	if located == 0 {
-		say("it is never located")
-	}
 	wrong, compared, mostM, err := astray(res.Posteriors, truth)
 	if err != nil {
 		return nil, err
 	}
 	if compared > 0 && float64(wrong) >= wrongShare*float64(compared) {
-		say("it is located wrongly: of %d located posteriors with a truth, %d have it outside the 99 %% radius, by up to %.0f m", compared, wrong, mostM)
+		f.Reasons = append(f.Reasons, fmt.Sprintf("it is located wrongly: of %d located posteriors with a truth, %d have it outside the 99 %% radius, by up to %.0f m", compared, wrong, mostM))
 	}
 	for _, b := range f.Fits {
-		if b.Bad {
-			say("%s fits badly: %.0f %% of its measurements are outliers, %.3g %% may be", b.who(), 100**b.Outliers, 100**b.Stated)
+		if text := b.suspicion(); text != "" {
+			f.Reasons = append(f.Reasons, text)
 		}
 	}
 	f.Reasons = append(f.Reasons, refusals(res, events)...)
-	f.Beyond = beyond(res, c)
+	if text := unmeasured(events); text != "" && len(f.Reasons) > 0 {
+		f.Reasons = slices.Insert(f.Reasons, 0, text)
+	}
+	if text := misplaced(res, events, c); text != "" {
+		f.Reasons, f.Misplaced = []string{text}, true
+	}
+	if n := len(res.Posteriors); n > 0 {
+		last := res.Posteriors[n-1]
+		f.Beyond = beyond(last, sensor.Time(last.TimeNS).Seconds(res.Start), c)
+	}
 	return f, nil
 }
 
@@ -142,15 +141,13 @@ func refusals(res *replay.Result, events []sensor.Event) []string {
 	return out
 }
 
-// beyond compares what was estimated with its prior.
-func beyond(res *replay.Result, c session.Config) []Beyond {
+// beyond compares what was estimated with its prior, seconds after the start.
+func beyond(last *summary.Posterior, seconds float64, c session.Config) []Beyond {
 	out := []Beyond{}
-	if len(res.Posteriors) == 0 {
+	if last == nil {
 		return out
 	}
 	suite, dim := suiteOf(c)
-	last := res.Posteriors[len(res.Posteriors)-1]
-	seconds := sensor.Time(last.TimeNS).Seconds(res.Start)
 	for _, q := range suite.Quantities(dim) {
 		for _, n := range last.Nuisances {
 			if n.Name != q.Name {

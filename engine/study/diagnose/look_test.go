@@ -38,7 +38,7 @@ func TestLook(t *testing.T) {
 	}{
 		{"a good car", fittedCar(t, 1), nil},
 		{"a good flight", flyer(t, 1), nil},
-		{"a reversed gyro", spoiled(plainCar(t, 3), each(func(m *sensor.Turn) { m.AngleRad *= -1 })), []string{"located wrongly", "the road fits badly"}},
+		{"a reversed gyro", spoiled(plainCar(t, 3), each(func(m *sensor.Turn) { m.AngleRad *= -1 })), []string{"located wrongly"}},
 		{"heights in feet", spoiled(flyer(t, 1), each(func(m *sensor.Clearance) { m.AltitudeM /= 0.3048 })), []string{"altimeter fits badly"}},
 		{"depths below zero", spoiled(surveyor(t, 1), each(func(m *sensor.Sounding) { m.DepthBelowTransducerM *= -1 })), []string{"sounder is refused: 120 of 120 measurements, first as unusable"}},
 	} {

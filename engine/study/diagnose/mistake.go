@@ -40,10 +40,22 @@ func (m *Mistake) String() string {
 	if m.Sensor != "" {
 		s = m.Sensor + ": " + s
 	}
-	if m.Unit != "" {
+	switch m.Unit {
+	case "":
+	case "times":
+		s += fmt.Sprintf(" (×%.3g)", m.shown())
+	default:
 		s += fmt.Sprintf(" (%+.3g %s)", m.Value, m.Unit)
 	}
 	return s
+}
+
+// shown is the value for people.
+func (m *Mistake) shown() float64 {
+	if m.search != nil && m.search.shown != nil {
+		return m.search.shown(m.Value)
+	}
+	return m.Value
 }
 
 // undo returns an event as it should have been recorded.

@@ -31,8 +31,8 @@ func TestUndoes(t *testing.T) {
 		{name: "times early", good: sensor.Turn{Since: before(1), AngleRad: 1, SigmaRad: 1}, bad: sensor.Turn{Since: before(2), AngleRad: 1, SigmaRad: 1}, badTime: at - 1e9},
 		{name: "times late", good: sensor.Fix{SigmaM: 1}, bad: sensor.Fix{SigmaM: 1}, badTime: at + 1e9},
 		{name: "speeds ten times too large", good: sensor.Speed{MPS: 3, SigmaMPS: 1}, bad: sensor.Speed{MPS: 30, SigmaMPS: 1}},
-		{name: "speeds in kilometres an hour", good: sensor.Speed{MPS: 10, SigmaMPS: 1}, bad: sensor.Speed{MPS: 36, SigmaMPS: 1}},
-		{name: "speeds in knots", good: sensor.Speed{MPS: 1852.0 / 3600, SigmaMPS: 1}, bad: sensor.Speed{MPS: 1, SigmaMPS: 1}},
+		{name: "speeds in kilometres an hour, taken as m/s", good: sensor.Speed{MPS: 10, SigmaMPS: 1}, bad: sensor.Speed{MPS: 36, SigmaMPS: 1}},
+		{name: "speeds in knots, taken as m/s", good: sensor.Speed{MPS: 1852.0 / 3600, SigmaMPS: 1}, bad: sensor.Speed{MPS: 1, SigmaMPS: 1}},
 		{name: "forward and backward reversed", good: sensor.Speed{MPS: 3, SigmaMPS: 1}, bad: sensor.Speed{MPS: -3, SigmaMPS: 1}},
 		{name: "right and left reversed", good: sensor.BodyDisplacement{Since: before(1), ForwardM: 1, RightM: 2, TurnRad: 3}, bad: sensor.BodyDisplacement{Since: before(1), ForwardM: 1, RightM: -2, TurnRad: 3}},
 		{name: "right and left reversed, turns too", good: sensor.BodyDisplacement{Since: before(1), ForwardM: 1, RightM: 2, TurnRad: 3}, bad: sensor.BodyDisplacement{Since: before(1), ForwardM: 1, RightM: -2, TurnRad: -3}},
@@ -197,7 +197,7 @@ func TestUnitsKeepEvidence(t *testing.T) {
 	whole := func(events []sensor.Event, m *Mistake) float64 {
 		r, err := newRun(c.config, c.suite, events, m)
 		must(t, r, err)
-		if err := r.advance(0, true); err != nil {
+		if err := r.advance(0, true, math.Inf(1)); err != nil {
 			t.Fatal(err)
 		}
 		return r.nats()
@@ -268,13 +268,61 @@ func TestDensityOfTheLog(t *testing.T) {
 			events[at].Measurement = ev
 			r, err := newRun(c.config, c.suite, events, &m)
 			must(t, r, err)
-			if err := r.advance(0, true); err != nil {
+			if err := r.advance(0, true, math.Inf(1)); err != nil {
 				t.Fatal(err)
 			}
 			sum += math.Exp(r.nats()) * stepM * math.Abs(k.scale)
 		}
 		if math.Abs(sum-1) > 0.01 {
 			t.Errorf("%s: the density sums to %v", k.name, sum)
+		}
+	}
+}
+
+// TestBudget: what a diagnosis may take follows the replay's work, between its
+// bounds, and is the cap where there was none.
+func TestBudget(t *testing.T) {
+	for _, c := range []struct {
+		replay *Record
+		wantS  float64
+	}{{nil, mostS}, {&Record{}, leastS}, {&Record{work: 0.5 * workPerS}, 0.5 * timesReplay}, {&Record{work: 100 * workPerS}, mostS}} {
+		if got := budgetOf(c.replay).most / workPerS; math.Abs(got-c.wantS) > 1e-9 {
+			t.Errorf("%+v: %v s, want %v", c.replay, got, c.wantS)
+		}
+	}
+}
+
+// TestCutShort: with little to spend, less of the drive is tried, which is the
+// same whatever runs at once, and what is said counts what was tried.
+func TestCutShort(t *testing.T) {
+	s := flyer(t, 1)
+	c, err := newCourse(s.drive, s.config, Options{MaxCells: 300})
+	must(t, c, err)
+	c.budget.most = 3e5
+	r := &Report{}
+	if err := c.tryAll(r, Options{}); err != nil {
+		t.Fatal(err)
+	}
+	if whole := c.events[len(c.events)-1].Time; !c.isCut || c.rounds[len(c.rounds)-1] >= whole {
+		t.Errorf("not cut: %v of %v", c.rounds, whole)
+	}
+	for _, k := range r.Candidates {
+		if k.Named {
+			t.Errorf("%s is named", k.Text())
+		}
+	}
+}
+
+// TestUnmeasured: a suspect log without distance, displacement or speed says so
+// first; one that has some does not.
+func TestUnmeasured(t *testing.T) {
+	turns := []sensor.Event{{Sensor: "gyro", Measurement: sensor.Turn{}}, {Sensor: "compass", Measurement: sensor.HeadingFix{}}}
+	if text := unmeasured(turns); !strings.HasPrefix(text, "nothing in the log measures distance") {
+		t.Errorf("%q", text)
+	}
+	for _, m := range []sensor.Measurement{sensor.Travel{}, sensor.Displacement{}, sensor.BodyDisplacement{}, sensor.Speed{}} {
+		if text := unmeasured(append(turns, sensor.Event{Measurement: m})); text != "" {
+			t.Errorf("%T: %q", m, text)
 		}
 	}
 }

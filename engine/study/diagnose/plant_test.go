@@ -112,20 +112,24 @@ func agile(t testing.TB, seed uint64) *scene {
 func surveyor(t testing.TB, seed uint64) *scene { return survey(t, seed, 120) }
 
 var plants = []plant{
-	{name: "car: gyro reversed", scene: plainCar, spoil: each(func(m *sensor.Turn) { m.AngleRad *= -1 }), want: "turn sign reversed", shortS: 110},
+	{name: "car: gyro reversed", scene: plainCar, spoil: each(func(m *sensor.Turn) { m.AngleRad *= -1 }), want: "turn sign reversed", shortS: 80},
 	{name: "car: distances ×10", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 10 }), want: "distances ten times too large"},
-	{name: "car: distances ×0.1", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 0.1 }), want: "distances ten times too small", shortS: 80},
+	{name: "car: distances ×0.1", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 0.1 }), want: "distances ten times too small"},
+	{name: "car: miles for kilometres", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM /= 1.609344 }), want: "distances in miles or mph, taken as kilometres or km/h", shortS: 80},
+	{name: "car: kilometres for miles", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 1.609344 }), want: "distances in kilometres or km/h, taken as miles or mph"},
+	{name: "car: km/h for m/s", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 3.6 }), want: "distances in km/h, taken as m/s"},
+	{name: "car: yards", scene: fittedCar, spoil: each(func(m *sensor.Travel) { m.DistanceM /= 0.9144 }), want: "distances in yards, taken as metres"},
 	{name: "car: travel reversed", scene: fittedCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= -1 }), want: "forward and backward reversed"},
 	{name: "car: fixes 1 s late", scene: fittedCar, spoil: late("fix", 1), want: "times late", value: 1, shortS: 60},
 	{name: "car: compass 1 s early", scene: fittedCar, spoil: late("compass", -1), want: "times early", value: -1},
-	{name: "car: fixes swapped", scene: fittedCar, spoil: each(func(m *sensor.Fix) { m.Position.Lon, m.Position.Lat = m.Position.Lat, m.Position.Lon }), want: "longitude and latitude swapped", shortS: 60},
+	{name: "car: fixes swapped", scene: fittedCar, spoil: each(func(m *sensor.Fix) { m.Position.Lon, m.Position.Lat = m.Position.Lat, m.Position.Lon }), want: "longitude and latitude swapped"},
 	{name: "car: compass, declination 12°", scene: fittedCar, spoil: each(func(m *sensor.HeadingFix) { m.HeadingRad -= geo.Rad(12) }), want: "directions from another north", value: 12, within: 2},
 	{name: "car: barometer in feet", scene: hillyCar, spoil: each(func(m *sensor.Barometer) { m.AltitudeM /= 0.3048 }), want: "altitude in feet"},
 	{name: "car: barometer 35 m low", scene: hillyCar, spoil: each(func(m *sensor.Barometer) { m.AltitudeM -= 35 }), want: "vertical datum off", value: -35, within: 3},
 	{name: "car: bearings, declination −10°", scene: hearingCar, spoil: each(func(m *sensor.Bearing) { m.BearingRad += geo.Rad(10) }), want: "directions from another north", value: -10, within: 2},
-	{name: "flight: altitude in feet", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM /= 0.3048 }), want: "altitude in feet", shortS: 30},
+	{name: "flight: altitude in feet", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM /= 0.3048 }), want: "altitude in feet"},
 	{name: "flight: both in feet", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM /= 0.3048; m.ClearanceM /= 0.3048 }), want: "altitude and clearance in feet"},
-	{name: "flight: converted as if feet", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM *= 0.3048; m.ClearanceM *= 0.3048 }), want: "altitude and clearance in metres, but converted as if from feet", shortS: 30},
+	{name: "flight: converted as if feet", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM *= 0.3048; m.ClearanceM *= 0.3048 }), want: "altitude and clearance in metres, but converted as if from feet"},
 	{name: "flight: heights ×10", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM *= 10; m.ClearanceM *= 10 }), want: "altitude and clearance ten times too large"},
 	{name: "flight: heights ×0.1", scene: flyer, spoil: each(func(m *sensor.Clearance) { m.AltitudeM *= 0.1; m.ClearanceM *= 0.1 }), want: "altitude and clearance ten times too small"},
 	{name: "flight: displacement ×10", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM *= 10; m.NorthM *= 10 }), want: "distances ten times too large"},
@@ -140,7 +144,10 @@ var plants = []plant{
 	{name: "survey: depths negative", scene: surveyor, spoil: each(func(m *sensor.Sounding) { m.DepthBelowTransducerM *= -1; m.TransducerDepthM *= -1 }), want: "depth sign reversed"},
 	{name: "survey: depths ×10", scene: surveyor, spoil: each(func(m *sensor.Sounding) { m.DepthBelowTransducerM *= 10; m.TransducerDepthM *= 10 }), want: "depths ten times too large"},
 	{name: "survey: log ×10", scene: surveyor, spoil: each(func(m *sensor.Speed) { m.MPS *= 10 }), want: "speeds ten times too large"},
-	{name: "survey: log in knots", scene: surveyor, spoil: each(func(m *sensor.Speed) { m.MPS /= 0.5144 }), want: "speeds in knots"},
+	{name: "survey: log in knots", scene: surveyor, spoil: each(func(m *sensor.Speed) { m.MPS /= 0.5144 }), want: "speeds in knots, taken as m/s"},
+	{name: "survey: log in mph", scene: surveyor, spoil: each(func(m *sensor.Speed) { m.MPS /= 0.44704 }), want: "speeds in miles an hour, taken as m/s"},
+	{name: "survey: knots for km/h", scene: surveyor, spoil: each(func(m *sensor.Speed) { m.MPS /= 1.852 }), want: "speeds in knots, taken as kilometres an hour"},
+	{name: "survey: depths in fathoms", scene: surveyor, spoil: each(func(m *sensor.Sounding) { m.DepthBelowTransducerM /= 1.8288; m.TransducerDepthM /= 1.8288 }), want: "depths in fathoms, taken as metres"},
 	{name: "survey: datum −25 m", scene: surveyor, spoil: each(func(m *sensor.Sounding) { m.DepthBelowTransducerM += 25 }), want: "vertical datum off", value: -25, within: 3},
 	{name: "survey: declination 15°", scene: surveyor, spoil: each(func(m *sensor.Speed) { m.CourseRad -= geo.Rad(15) }), want: "directions from another north", value: 15, within: 2},
 	{
@@ -159,6 +166,17 @@ var invented = Grid{"invented", func(at geo.LonLat) float64 {
 // gridDeg is its convergence where the scenes are: 13° of longitude times the
 // sine of 45°, and a little.
 var gridDeg = geo.Deg(invented.Convergence(atlantic))
+
+// unlisted are mistakes that are not tried: whatever fits better than the log
+// as it stands, none explains it.
+var unlisted = []plant{
+	{name: "car: distances ×0.75", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 0.75 }), shortS: 110},
+	{name: "car: distances ×1.35", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 1.35 })},
+	{name: "car: distances ×7", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 7 })},
+	{name: "flight: displacement ×0.7", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM *= 0.7; m.NorthM *= 0.7 }), shortS: 30},
+	{name: "car: turns ×1.5", scene: plainCar, spoil: each(func(m *sensor.Turn) { m.AngleRad *= 1.5 })},
+	{name: "survey: depths ×1.3", scene: surveyor, spoil: each(func(m *sensor.Sounding) { m.DepthBelowTransducerM *= 1.3 })},
+}
 
 var unspoiled = []plant{
 	{name: "plain car", scene: plainCar},

@@ -2,8 +2,10 @@ package diagnose
 
 import (
 	"errors"
+	"fmt"
 	"math"
 	"slices"
+	"sync"
 
 	"leadline/engine/sensor"
 	"leadline/engine/session"
@@ -18,7 +20,11 @@ type course struct {
 	start  sensor.Time
 	rounds []sensor.Time // ascending; the last is the end
 	each   func(n int, f func(i int))
-	tick   func() // after each round
+	budget budget
+	isCut  bool // the opening is shorter than asked for, for want of budget
+	mayCut bool // in the first race
+	// tick hears how much of a round is done, one at a time.
+	tick func(round int, share float64)
 }
 
 // entrant is a mistake in a race.
@@ -57,28 +63,57 @@ func (c *course) race(ms []Mistake) []*entrant {
 		es[i] = &entrant{mistake: &ms[i]}
 	}
 	alive := slices.Clone(es)
-	for round := range c.rounds {
-		c.each(len(alive), func(i int) { c.advance(alive[i], round) })
+	for round := 0; round < len(c.rounds); round++ {
+		c.together(alive, round)
 		goOn := keep(alive)
+		c.cut(es, goOn, round)
 		for _, e := range alive {
 			if round == len(c.rounds)-1 || !slices.Contains(goOn, e) {
 				e.leave()
 			}
 		}
 		alive = goOn
-		c.tick()
+	}
+	for _, e := range es {
+		c.budget.spent += e.work()
 	}
 	return es
 }
 
+// together runs entrants up to the end of a round.
+func (c *course) together(es []*entrant, round int) {
+	var mu sync.Mutex
+	done := 0
+	c.each(len(es), func(i int) {
+		c.advance(es[i], round)
+		mu.Lock()
+		defer mu.Unlock()
+		done++
+		c.tick(round, float64(done)/float64(len(es)))
+	})
+}
+
+// errBroken drops a mistake under which the session broke a rule of its own,
+// such as one that leaves no place where the vehicle can be.
+var errBroken = errors.New("the session broke")
+
 // advance runs an entrant up to the end of a round.
 func (c *course) advance(e *entrant, round int) {
+	defer func() {
+		if broke := recover(); broke != nil {
+			e.err = fmt.Errorf("%w: %v", errBroken, broke)
+		}
+	}()
 	if e.run == nil {
 		if e.run, e.err = newRun(c.config, c.suite, c.events, e.mistake); e.err != nil {
 			return
 		}
 	}
-	if e.err = e.run.advance(c.rounds[round], round == len(c.rounds)-1); e.err != nil {
+	most := math.Inf(1)
+	if !e.isLog() {
+		most = c.budget.most / costlyShare
+	}
+	if e.err = e.run.advance(c.rounds[round], round == len(c.rounds)-1, most); e.err != nil {
 		return
 	}
 	e.nats = append(e.nats, e.run.nats())

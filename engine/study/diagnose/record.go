@@ -26,6 +26,7 @@ type Record struct {
 	voices  []spoken
 	list    []weighing
 	last    sensor.Time
+	work    float64 // see budget.go
 }
 
 // spoken is who weighs the belief.
@@ -51,6 +52,7 @@ const leastOutlier = 1e-3
 
 // Add takes a change.
 func (r *Record) Add(c session.Change) {
+	r.work += 1 + float64(c.Cells)
 	r.rewind(c)
 	if c.Likelihood == nil {
 		return

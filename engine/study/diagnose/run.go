@@ -18,9 +18,26 @@ type run struct {
 	next    int
 	s       *session.Session
 	log     Record
-	refused float64            // nats of measurements that were refused
-	motions int                // refused ones
-	latest  *summary.Posterior // when it has left
+	refused float64 // nats of measurements that were refused
+	motions int     // refused ones
+	// refusedOf counts what was refused, by sensor in the order of the first.
+	refusedOf []refusedSensor
+	outcomes  outcomes
+	latest    *summary.Posterior // when it has left
+}
+
+type refusedSensor struct {
+	sensor string
+	n      int
+}
+
+func (r *run) refuse(name string) {
+	i := slices.IndexFunc(r.refusedOf, func(o refusedSensor) bool { return o.sensor == name })
+	if i < 0 {
+		i = len(r.refusedOf)
+		r.refusedOf = append(r.refusedOf, refusedSensor{sensor: name})
+	}
+	r.refusedOf[i].n++
 }
 
 // newRun prepares a run; config's session is made when it begins.
@@ -47,23 +64,32 @@ func (r *run) at(ev sensor.Event) sensor.Time {
 	return ev.Time - sensor.Time(math.Round(r.suite.Sensor(ev.Sensor, ev.Measurement.Kind()).TimeOffsetS*1e9))
 }
 
-// advance runs up to a time, what is there then included, or to the end.
-func (r *run) advance(until sensor.Time, end bool) error {
+// advance runs up to a time, what is there then included, or to the end, or
+// until it has taken more work than most.
+func (r *run) advance(until sensor.Time, end bool, most float64) error {
 	for ; r.next < len(r.events) && (end || r.at(r.events[r.next]) <= until); r.next++ {
+		if r.log.work > most {
+			return errCostly
+		}
 		ev := r.events[r.next]
-		_, err := r.s.Add(ev)
+		ps, err := r.s.Add(ev)
+		r.outcomes.take(ps, r.s.Withdrawn())
 		var ref *session.Refusal
 		switch {
 		case err == nil:
 		case !errors.As(err, &ref):
 			return err
-		case sensor.IsMotion(ev.Measurement.Kind()):
-			r.motions++
 		default:
-			r.refused += floorNats
+			r.refuse(ev.Sensor)
+			if sensor.IsMotion(ev.Measurement.Kind()) {
+				r.motions++
+			} else {
+				r.refused += floorNats
+			}
 		}
 	}
-	r.s.Flush()
+	ps := r.s.Flush()
+	r.outcomes.take(ps, r.s.Withdrawn())
 	return nil
 }
 

@@ -29,6 +29,8 @@ type scan struct {
 	sensor   string
 	// north is set for directions; see grids.
 	north bool
+	// shown makes what people read of a value; nil: the value itself.
+	shown func(value float64) float64
 }
 
 // values is how many are told apart.
@@ -62,6 +64,9 @@ func (s *scan) named(value, half float64) Mistake {
 const (
 	datumStepM, datumReachM, datumFineM, datumLeastM         = 10.0, 110.0, 1.25, 3.0
 	northStepDeg, northReachDeg, northFineDeg, northLeastDeg = 4.0, 44.0, 0.5, 3.0
+	// Logarithms of a factor: from 1/12 to 12; less than 6 % is an error that
+	// wheels, logs and inertial units have.
+	factorStep, factorReach, factorFine, factorLeast = 0.1, 2.5, 0.0125, 0.06
 )
 
 // scans lists the searches that a log asks for.
@@ -89,6 +94,47 @@ func scans(vs []voice, suite *sensor.Suite) []scan {
 		out = append(out, northScan(strings.Join(directed, ", "), func(s, k string) bool { return kinds[s+"\x00"+k] }))
 	}
 	return out
+}
+
+// factorScans lists the searches for a factor.
+func factorScans(vs []voice) []scan {
+	var out []scan
+	for _, v := range vs {
+		if name := v.lengths(); name != "" {
+			out = append(out, v.factorScan(name))
+		}
+	}
+	return out
+}
+
+// lengths names the numbers that say how far or how fast a vehicle moves, ""
+// for a voice that has none.
+func (v voice) lengths() string {
+	switch v.kind {
+	case sensor.KindTravel, sensor.KindDisplacement, sensor.KindBodyDisplacement:
+		return "distances"
+	case sensor.KindSpeed:
+		return "speeds"
+	}
+	return ""
+}
+
+// factorFamily is what all mistaken units of a sensor's lengths are of: if one
+// of them is a usual one, that is the mistake; if not, none of them is, however
+// much better the log fits with one that is nearer.
+func (v voice) factorFamily() string { return "factor " + v.sensor + " " + v.kind }
+
+func (v voice) factorScan(name string) scan {
+	return scan{
+		family: v.factorFamily(), step: factorStep, reach: factorReach, fine: factorFine, least: factorLeast, sensor: v.sensor,
+		make: func(value, _ float64) Mistake {
+			m := v.factor(name+" off by a factor of no usual unit, to be multiplied", distance, kernel.Exp(value), false,
+				"look at the wheel's size, its ticks a metre, the scale and the unit")
+			m.Unit = "times"
+			return m
+		},
+		shown: kernel.Exp,
+	}
 }
 
 func northScan(who string, of func(s, k string) bool) scan {

@@ -1,6 +1,9 @@
 package diagnose
 
-import "math"
+import (
+	"math"
+	"slices"
+)
 
 // tryAll tries all mistakes that a log may hold, and fills the report.
 func (c *course) tryAll(r *Report, o Options) error {
@@ -12,22 +15,25 @@ func (c *course) tryAll(r *Report, o Options) error {
 		r.Tried += searches[i].values()
 		ms = append(ms, searches[i].coarse()...)
 	}
-	done, steps := 0, len(c.rounds)+len(searches)
-	progress := func() {
-		if done++; o.Progress != nil {
+	const fine = 100 // steps of one
+	steps := fine * (len(c.rounds) + len(searches) + 1)
+	progress := func(done int) {
+		if o.Progress != nil {
 			o.Progress(done, steps)
 		}
 	}
-	c.tick = progress
+	rounds := len(c.rounds)
+	c.tick = func(round int, share float64) { progress(fine*round + int(fine*share)) }
+	c.mayCut = true
 	es := c.race(ms)
-	c.tick = func() {}
+	c.tick, c.mayCut = func(int, float64) {}, false
 	base := es[0]
 	if base.err != nil {
 		return base.err
 	}
 	tried, found := c.sortOut(es[1:])
 	for i := range searches {
-		progress()
+		progress(fine * (rounds + i))
 		s := &searches[i]
 		e := found[s.family]
 		if e == nil {
@@ -37,24 +43,73 @@ func (c *course) tryAll(r *Report, o Options) error {
 		if s.broadens() && e.mistake.Value == 0 {
 			continue
 		}
-		if c.finished(e) && (s.broadens() || c.better(e, base)) {
+		if c.left() && c.finished(e) && (s.broadens() || c.better(e, base)) {
 			if fine := c.refine(s, e); fine != nil {
 				e = fine
 			}
 		}
 		tried = append(tried, e)
-		if c.finished(e) && e.run.latest != nil {
+		if c.left() && c.finished(e) && e.run.latest != nil {
 			known := ran(c.race(s.grids(o.Grids, e.run.latest.Mean)))
 			r.Tried += len(known)
 			tried = append(tried, known...)
 		}
 	}
+	c.compare(r, base, tried)
+	progress(steps - fine)
+	if more := c.factors(r, base); len(more) > 0 {
+		c.compare(r, base, append(tried, more...))
+	}
+	progress(steps)
+	return nil
+}
+
+// compare fills a report with those that were tried.
+func (c *course) compare(r *Report, base *entrant, tried []*entrant) {
 	r.NeededNats = needed(r.Tried)
 	r.Fits = base.run.log.fits(c.start)
 	r.BaseGivenUpAfter = c.givenUp(base)
 	r.Candidates = c.candidates(base, tried)
+	r.challenge()
 	r.judge()
-	return nil
+}
+
+// factors searches for factors of no usual unit, where a unit would be named or
+// nothing is although the log is suspect: a unit may fit better than the log as
+// it stands only because it is nearer. These are many, and so they come last.
+func (c *course) factors(r *Report, base *entrant) (found []*entrant) {
+	searches := factorScans(c.voices)
+	none := !slices.ContainsFunc(r.Candidates, func(k Candidate) bool { return k.Named })
+	if none && c.finished(base) && len(c.suspicions(base)) == 0 {
+		return nil
+	}
+	for i := range searches {
+		s := &searches[i]
+		isUnit := func(k Candidate) bool { return k.Named && k.mistake.family == s.family }
+		if !c.left() || !none && !slices.ContainsFunc(r.Candidates, isUnit) {
+			continue
+		}
+		ms := s.coarse()
+		if len(r.Candidates) > 0 { // the best so far, to fall behind of
+			ms = append(ms, *r.Candidates[0].mistake)
+		}
+		var best *entrant
+		for _, e := range ran(c.race(ms)) {
+			if e.mistake.search == s && c.better(e, best) {
+				best = e
+			}
+		}
+		if best == nil {
+			continue
+		}
+		if c.finished(best) {
+			if fine := c.refine(s, best); fine != nil {
+				best = fine
+			}
+		}
+		found = append(found, best)
+	}
+	return found
 }
 
 // ran leaves out who did not even begin.
@@ -95,14 +150,12 @@ func (c *course) candidates(base *entrant, tried []*entrant) []Candidate {
 	for _, e := range tried {
 		m := e.mistake
 		k := Candidate{
-			Mistake: m.Name, Sensor: m.Sensor, Value: m.Value, Unit: m.Unit, Remedy: m.Remedy,
+			Mistake: m.Name, Sensor: m.Sensor, Value: m.shown(), Unit: m.Unit, Remedy: m.Remedy,
 			GainNats: e.gain(base, best), GivenUpAfter: c.givenUp(e), mistake: m,
 			eligible: c.finished(e) && (m.search == nil || math.Abs(m.Value) >= m.search.least),
 		}
-		for _, f := range e.run.log.fits(c.start) {
-			if f.Bad {
-				k.Bad = append(k.Bad, f.Sensor)
-			}
+		if k.eligible {
+			k.Suspect = c.suspicions(e)
 		}
 		out = append(out, k)
 	}
