@@ -51,7 +51,8 @@ const (
 //
 // goes to the place on the line that is nearest to its mean, conditioned on D
 // and δ being 0 with the variances L and H; where lines compete the hazards add
-// up. on is the share of the whole that b has and off that of l, whose sum does
+// up. One wider than enterMostM stays off, until measurements narrow it.
+// on is the share of the whole that b has and off that of l, whose sum does
 // not change; both are returned as they are then. What stays keeps its shape.
 func (l *Loose) Enter(b *Belief, space Nearby, e Entry, on, off float64, w *Workspace) (onAfter, offAfter float64) {
 	k := len(l.Quantities)
@@ -66,6 +67,9 @@ func (l *Loose) Enter(b *Belief, space Nearby, e Entry, on, off float64, w *Work
 		l.load(&g, i, k)
 		mean := geo.Point{E: g.mean[0], N: g.mean[1]}
 		sigma := math.Sqrt(0.5*(g.cov[0]+g.cov[2]) + math.Sqrt(square(0.5*(g.cov[0]-g.cov[2]))+square(g.cov[1])))
+		if sigma > enterMostM {
+			continue // wherever it is: the lines near its mean are none of its own
+		}
 		reach := math.Min(enterSigmas*math.Sqrt(sigma*sigma+e.LateralVar), enterMostM)
 		places = space.NearLines(places[:0], mean, reach)
 		if len(places) == 0 {

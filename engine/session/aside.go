@@ -159,7 +159,9 @@ func (s *Session) exchange(travelledM float64) {
 		s.leave(&part, share)
 	}
 	a.roadM += travelledM
-	if a.roadM < exchangeM {
+	// Coming back costs a pass over the belief: a wide one is passed over as much
+	// less often as it is wide.
+	if a.roadM < exchangeM*max(1, float64(st.belief.Cells())/float64(s.wideSize)) {
 		return
 	}
 	way := a.roadM
