@@ -79,7 +79,7 @@ func TestSameOverHTTP(t *testing.T) {
 		reason, field      string
 	}{
 		{"a bad field", leadlinev1.PositionService_Where_FullMethodName, `{"vehicles":["v"],"region_fractions":[2]}`, 400, "BAD_FIELD", "region_fractions"},
-		{"an unknown field", leadlinev1.PositionService_Where_FullMethodName, `{"vehicle":"v"}`, 400, "BAD_FIELD", ""},
+		{"an unknown field", leadlinev1.PositionService_Where_FullMethodName, `{"vehicle":"v"}`, 400, "BAD_FIELD", "vehicle"},
 		{"too much", leadlinev1.PositionService_Where_FullMethodName, `{"vehicles":["` + strings.Repeat("v", 4000) + `"]}`, 429, "", ""},
 		{"feeding", leadlinev1.PositionService_Feed_FullMethodName, `{}`, 501, "NOT_OFFERED", ""},
 		{"no call", "/leadline.v1.PositionService/Whence", `{}`, 501, "NOT_OFFERED", ""},
