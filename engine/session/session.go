@@ -23,7 +23,7 @@ type Config struct {
 	Suite *sensor.Suite
 	Start Start
 	// MaxCells bounds the Gaussians of the belief; 0 is 200 000. A plane
-	// without quantities may have eight times as many cells (pointsPerGaussian).
+	// without quantities may have eight times as many cells (PointsPerGaussian).
 	// It decides the resolution of a wide start, and so belongs to what a
 	// posterior depends on.
 	MaxCells int
@@ -117,7 +117,7 @@ func (s Start) prior(f geo.Frame) filter.Prior {
 // third, with 1.6 million by half a per cent.
 const (
 	defaultMaxCells   = 200_000
-	pointsPerGaussian = 8
+	PointsPerGaussian = 8
 )
 
 // Session is one vehicle's run. Use New.
@@ -222,7 +222,7 @@ func New(c Config) (*Session, error) {
 		return nil, err
 	}
 	if s.dim == 2 && len(s.suite.Quantities(s.dim)) == 0 {
-		s.maxCells = pointsPerGaussian * min(s.maxCells, math.MaxInt/pointsPerGaussian)
+		s.maxCells = PointsPerGaussian * min(s.maxCells, math.MaxInt/PointsPerGaussian)
 	}
 	b, err := filter.Seed(c.Space, c.Start.prior(c.Space.Frame()), s.suite.Quantities(s.dim), s.maxCells)
 	if errors.Is(err, filter.ErrNowhere) {

@@ -7,6 +7,7 @@ import (
 	"time"
 
 	"leadline/engine/drivefile"
+	"leadline/engine/filter"
 	"leadline/engine/geo"
 	"leadline/engine/sensor"
 	"leadline/engine/session"
@@ -21,8 +22,9 @@ type Options struct {
 	OpeningS float64
 	// MaxEvents cuts the opening short; 0: 20 000.
 	MaxEvents int
-	// MaxCells bounds the belief; 0: 10 000, or what the configuration says
-	// if that is less.
+	// MaxCells bounds the cells or Gaussians of the belief, points of a plane
+	// as well, of which a session would have more; 0: 10 000, or what the
+	// configuration says if that is less.
 	MaxCells int
 	// Grids are norths besides the true one that directions may count from.
 	Grids []Grid
@@ -134,6 +136,9 @@ func newCourse(d *drivefile.Drive, c session.Config, o Options) (*course, error)
 		}
 	}
 	c.MaxCells = o.MaxCells
+	if pointsAlone(c) {
+		c.MaxCells = max(1, c.MaxCells/session.PointsPerGaussian)
+	}
 	k := &course{config: c, each: o.Each, start: events[0].Time, tick: func(int, float64) {}, budget: budgetOf(o.Beside)}
 	for _, ev := range events {
 		if since, ok := sensor.Since(ev.Measurement); ok {
@@ -201,4 +206,16 @@ func opening(events []sensor.Event, seconds float64) int {
 		}
 	}
 	return len(events)
+}
+
+// pointsAlone reports whether a session's belief is points of a plane.
+func pointsAlone(c session.Config) bool {
+	if _, lines := c.Space.(filter.LineSpace); lines {
+		return false
+	}
+	suite := c.Suite
+	if suite == nil {
+		suite = sensor.Default(2)
+	}
+	return len(suite.For(2).Quantities(2)) == 0
 }
