@@ -42,6 +42,7 @@ type owner struct {
 
 	// Of the goroutine.
 	sess       Session
+	beside     *searches
 	sequence   uint64 // highest batch that is in
 	malformed  uint64 // measurements refused before they reached the session
 	posteriors uint64
@@ -77,9 +78,9 @@ type item struct {
 }
 
 // newOwner makes an owner that the caller's stream uses; go run starts it.
-func newOwner(s *Server, req *leadlinev1.Open, m *mapUse, sess Session) *owner {
+func newOwner(s *Server, req *leadlinev1.Open, m *mapUse, sess Session, beside *searches) *owner {
 	o := &owner{
-		srv: s, vehicle: req.GetHeader().GetVehicle(), drive: req.GetDrive(), header: req.GetHeader(), m: m, sess: sess,
+		srv: s, vehicle: req.GetHeader().GetVehicle(), drive: req.GetDrive(), header: req.GetHeader(), m: m, sess: sess, beside: beside,
 		openedAt: s.cfg.Now(),
 		attach:   make(chan *attachment), asks: make(chan func()),
 		quit: make(chan struct{}), dead: make(chan struct{}),
@@ -110,6 +111,7 @@ func (o *owner) stop(err error) {
 func (o *owner) run() {
 	defer o.srv.ended.Done()
 	defer o.srv.releaseMap(o.m)
+	defer o.beside.wait()
 	defer close(o.dead)
 	defer o.leave()
 	defer func() {

@@ -55,15 +55,16 @@ func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error)
 	case <-s.draining:
 		return nil, errStopping
 	}
+	beside := &searches{slots: s.searching}
 	sess, err := s.newSession(session.Config{
 		Vehicle: h.Vehicle, Space: m.Space, Names: m.Names, Suite: suite,
-		Start: start(h.Start), MaxCells: s.cfg.MaxCells,
+		Start: start(h.Start), MaxCells: s.cfg.MaxCells, Begin: beside.begin,
 	})
 	<-s.openings
 	if err != nil {
 		return nil, err
 	}
-	return s.admit(req, m, sess)
+	return s.admit(req, m, sess, beside)
 }
 
 // newSession makes a session, and turns whatever goes wrong into a status.
@@ -121,7 +122,7 @@ func (s *Server) resumeLocked(req *leadlinev1.Open) (*owner, error) {
 }
 
 // admit makes an owner of a session, unless another stream was faster.
-func (s *Server) admit(req *leadlinev1.Open, m *mapUse, sess Session) (*owner, error) {
+func (s *Server) admit(req *leadlinev1.Open, m *mapUse, sess Session, beside *searches) (*owner, error) {
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	if o, err := s.resumeLocked(req); o != nil || err != nil {
@@ -134,7 +135,7 @@ func (s *Server) admit(req *leadlinev1.Open, m *mapUse, sess Session) (*owner, e
 	} else if len(s.owners) >= s.cfg.Limits.Vehicles && !s.makeRoom() {
 		return nil, full("vehicles", s.cfg.Limits.Vehicles, "open: the server has its %d vehicles, all of them on a drive: try later, or raise the limit", s.cfg.Limits.Vehicles)
 	}
-	o := newOwner(s, req, m, sess)
+	o := newOwner(s, req, m, sess, beside)
 	s.owners[vehicle] = o
 	s.atlas.hold(m)
 	s.hub.begin(o.subject)

@@ -31,6 +31,7 @@ type Server struct {
 	health      *health.Server
 	openings    chan struct{} // holds a token a session being made
 	predictions chan struct{} // and one a belief being carried on
+	searching   chan struct{} // and one a search of a whole map
 	streams     atomic.Int64
 	hub         *hub
 	atlas       *atlas
@@ -68,6 +69,7 @@ func New(cfg Config) (*Server, error) {
 		health:      health.NewServer(),
 		openings:    make(chan struct{}, cfg.Limits.Openings),
 		predictions: make(chan struct{}, cfg.Limits.Predictions),
+		searching:   make(chan struct{}, searchesAtOnce),
 		draining:    make(chan struct{}),
 		owners:      map[string]*owner{},
 		hub:         newHub(cfg.Limits, cfg.Now),

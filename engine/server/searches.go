@@ -1,0 +1,37 @@
+package server
+
+import "sync"
+
+// searchesAtOnce on a whole server: each takes a core for seconds, and what a
+// thousand openings take of memory.
+const searchesAtOnce = 2
+
+// searches runs what a session has done beside it, such as a search of the whole
+// map: elsewhere than on the owner's goroutine, which goes on with measurements
+// meanwhile, and few at once on the whole server.
+type searches struct {
+	slots   chan struct{} // the server's, holds a token each that runs
+	running sync.WaitGroup
+}
+
+// begin begins work and returns what waits for its end; that panics with what
+// work panicked with.
+func (s *searches) begin(work func()) (wait func()) {
+	ended := make(chan any, 1)
+	s.running.Go(func() {
+		s.slots <- struct{}{}
+		defer func() {
+			<-s.slots
+			ended <- recover()
+		}()
+		work()
+	})
+	return sync.OnceFunc(func() {
+		if r := <-ended; r != nil {
+			panic(r)
+		}
+	})
+}
+
+// wait waits for all that has begun: it reads the map.
+func (s *searches) wait() { s.running.Wait() }
