@@ -16,7 +16,7 @@ func still(s float64, name string) sensor.Event {
 
 func afloat(t *testing.T) *Session {
 	p := sea()
-	return open(t, Config{Space: p, Start: pointStart(p, geo.Point{}, 50), MaxCells: 2000})
+	return open(t, Config{Space: p, Start: pointStart(p, geo.Point{}, 50), MaxCells: 250})
 }
 
 // addAll adds events in order of arrival; the session's counts agree with what
