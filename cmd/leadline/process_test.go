@@ -54,7 +54,7 @@ func TestMain(m *testing.M) {
 }
 
 // patience is how long any command may take before it is taken to hang: the
-// slowest, the demo, takes some 20 s on an idle machine.
+// slowest, the demo, takes some 40 s on an idle machine.
 const patience = 5 * time.Minute
 
 func command(ctx context.Context, args ...string) *exec.Cmd {
