@@ -87,7 +87,7 @@ func TestOtherDrive(t *testing.T) {
 func TestLimits(t *testing.T) {
 	var clock atomic.Int64
 	clock.Store(int64(began))
-	_, conn := serve(t, Config{
+	s, conn := serve(t, Config{
 		NewSession: newTally,
 		Limits:     Limits{Vehicles: 2, Streams: 3, MessageBytes: 4096, IdleTimeout: time.Minute},
 		Now:        func() time.Time { return time.Unix(0, clock.Load()) },
@@ -103,6 +103,13 @@ func TestLimits(t *testing.T) {
 	}
 	wantStatus(t, "a message too large", ends(b), codes.ResourceExhausted, "larger than max (")
 
+	// gRPC tells this one itself, before the handler knows and the vehicle is
+	// idle: only then may the clock go on.
+	for ctx := limited(t); s.streams.Load() > 1; time.Sleep(time.Millisecond) {
+		if ctx.Err() != nil {
+			t.Fatal("the stream of a message too large does not end at the server")
+		}
+	}
 	clock.Add(int64(59 * time.Second))
 	_, err = client.Open(limited(t), conn, client.Drive{Header: header("c")})
 	wantStatus(t, "a vehicle not idle for long", err, codes.ResourceExhausted, "its 2 vehicles")
