@@ -139,6 +139,7 @@ func newCourse(d *drivefile.Drive, c session.Config, o Options) (*course, error)
 	if pointsAlone(c) {
 		c.MaxCells = max(1, c.MaxCells/session.PointsPerGaussian)
 	}
+	c.Suite = onRoads(c)
 	k := &course{config: c, each: o.Each, start: events[0].Time, tick: func(int, float64) {}, budget: budgetOf(o.Beside)}
 	for _, ev := range events {
 		if since, ok := sensor.Since(ev.Measurement); ok {
@@ -206,6 +207,17 @@ func opening(events []sensor.Event, seconds float64) int {
 		}
 	}
 	return len(events)
+}
+
+// onRoads is the suite of a configuration for a vehicle that stays on the map's
+// roads and is moved by nobody: whoever may be anywhere explains every log a
+// little, right or wrong, and hides what a mistake costs.
+func onRoads(c session.Config) *sensor.Suite {
+	suite, _ := suiteOf(c)
+	never, always := new(float64), *suite
+	always.Vehicle.OffMapPerM = never
+	always.Vehicle.LostPerS, always.Vehicle.MovedPerS = never, never
+	return &always
 }
 
 // pointsAlone reports whether a session's belief is points of a plane.

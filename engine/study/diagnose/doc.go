@@ -29,6 +29,9 @@
 //     they exceed the mean of a vehicle that follows its road: a longer way is
 //     no gain in itself.
 //
+// All of them stay on the map's roads and are moved by nobody (onRoads): whoever
+// may be anywhere explains every log a little, which hides what a mistake costs.
+//
 // Stated sigmas stay as they are: they come from data sheets and not from the
 // instrument.
 //
@@ -38,8 +41,8 @@
 //
 // # What speaks for a mistake
 //
-// A run is suspect if it is contradicted, never located, located away from the
-// truth, if a sensor's measurements are refused, or if a sensor fits badly: by
+// A run is suspect if it is contradicted, never located, off the map's roads for
+// half of it, located away from the truth, if a sensor's measurements are refused, or if a sensor fits badly: by
 // the share of its measurements that are outliers. Of each the probability that
 // it is one follows from its evidence: an outlier has the density w·f, weight
 // and density of the flat part of its sensor's noise, and the measurement had

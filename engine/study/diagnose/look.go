@@ -46,6 +46,10 @@ const beyondSigmas = 3.0
 // posteriors that say located: twenty times as often as it may.
 const wrongShare = 0.2
 
+// A run has strayed if it is off the map for half of its posteriors: car parks
+// and missing roads are left again.
+const strayedShare = 0.5
+
 // A sensor's measurements are refused if a tenth of them are.
 const refusedShare = 0.1
 
@@ -67,6 +71,9 @@ func Look(res *replay.Result, record *Record, truth []score.Truth, events []sens
 		o = append(o, outcome{p.TimeNS, p.Status})
 	}
 	f.Reasons = append(f.Reasons, o.suspicions(res.Start, math.MinInt64)...)
+	if text := o.strayed(); text != "" {
+		f.Reasons = append(f.Reasons, text)
+	}
 	f.Reasons = append(f.Reasons, isolated...)
 	wrong, compared, mostM, err := astray(res.Posteriors, truth)
 	if err != nil {

@@ -38,7 +38,7 @@ func TestLook(t *testing.T) {
 	}{
 		{"a good car", fittedCar(t, 1), nil},
 		{"a good flight", flyer(t, 1), nil},
-		{"a reversed gyro", spoiled(plainCar(t, 3), each(func(m *sensor.Turn) { m.AngleRad *= -1 })), []string{"located wrongly"}},
+		{"a reversed gyro", spoiled(plainCar(t, 3), each(func(m *sensor.Turn) { m.AngleRad *= -1 })), []string{"located wrongly", "off the map's roads"}},
 		{"heights in feet", spoiled(flyer(t, 1), each(func(m *sensor.Clearance) { m.AltitudeM /= 0.3048 })), []string{"altimeter fits badly"}},
 		{"depths below zero", spoiled(surveyor(t, 1), each(func(m *sensor.Sounding) { m.DepthBelowTransducerM *= -1 })), []string{"sounder is refused: 120 of 120 measurements, first as unusable"}},
 	} {
@@ -65,6 +65,7 @@ func TestStatuses(t *testing.T) {
 	for status, want := range map[summary.Status]string{
 		summary.Located: "", summary.Ambiguous: "it is never located", summary.Unsure: "it is never located",
 		summary.Contradicted: "it is contradicted 4 s after the start; it is never located",
+		summary.OffMap:       "it is never located; it is off the map's roads for 1 of 1 posteriors",
 	} {
 		f, err := Look(at(status), &Record{}, nil, nil, s.config)
 		if err != nil || strings.Join(f.Reasons, "; ") != want {

@@ -60,6 +60,20 @@ func (o outcomes) suspicions(start sensor.Time, halfway int64) []string {
 	return out
 }
 
+// strayed says that a run is off the map for long, "" if it is not.
+func (o outcomes) strayed() string {
+	off := 0
+	for _, at := range o {
+		if at.status == summary.OffMap {
+			off++
+		}
+	}
+	if off == 0 || float64(off) < strayedShare*float64(len(o)) {
+		return ""
+	}
+	return fmt.Sprintf("it is off the map's roads for %d of %d posteriors", off, len(o))
+}
+
 // suspicion is that a sensor fits badly, "" if it does not.
 func (f *Fit) suspicion() string {
 	if !f.Bad {
