@@ -2,9 +2,11 @@ package main
 
 import (
 	"math"
+	"strings"
 
 	"leadline/engine/geo"
 	"leadline/engine/server"
+	"leadline/network"
 	"leadline/network/roadfile"
 	leadlinev1 "leadline/proto/leadline/v1"
 	"leadline/terrain"
@@ -13,7 +15,18 @@ import (
 
 // served is the map under a name, for a server, which closes it.
 func (m *mapFile) served(name string) server.Map {
-	return server.Map{Name: name, Space: m.Space, Names: m.Names, About: m.about(), Close: m.Close}
+	out := server.Map{Name: name, Space: m.Space, Names: m.Names, About: m.about(), Close: m.Close}
+	if m.Roads != nil {
+		out.Roads = m.Roads
+		out.Check = func() string { return network.Check(m.Roads).String() }
+	} else {
+		out.Check = func() string {
+			var b strings.Builder
+			must(heightfile.Check(m.Heights).WriteText(&b)) // a Builder does not fail
+			return b.String()
+		}
+	}
+	return out
 }
 
 // uploadsTo keeps maps that clients send in a folder.

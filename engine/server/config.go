@@ -47,6 +47,11 @@ type Map struct {
 	Name  string
 	Space filter.Space
 	Names session.Names
+	// Roads, if set, are its lines, for those who draw it.
+	Roads Roads
+	// Check, if set, says in lines of text what is right and wrong with the map.
+	// It may take seconds.
+	Check func() string
 	// About is told to those who ask what the map is.
 	About MapAbout
 	// Close, if set, is called once the server uses the map no more: when it

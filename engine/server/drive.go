@@ -29,22 +29,33 @@ func (o *owner) batch(b *leadlinev1.Batch) {
 	r := &leadlinev1.Receipt{Sequence: b.GetSequence()}
 	var n news
 	for i, m := range b.GetMeasurements() {
-		ps, err := o.measure(m)
-		if err != nil {
-			refused, ok := refusal(i, m, err)
-			if !ok {
-				panic(fmt.Sprintf("batch %d, measurement %d: %v", b.GetSequence(), i, err)) // only refusals are agreed
-			}
-			o.log.refused(refused)
+		if refused := o.enter(&n, i, m); refused != nil {
 			r.Refusals = append(r.Refusals, refused)
 			continue
 		}
 		r.Accepted++
-		o.publish(&n, ps)
 	}
 	o.sequence = b.GetSequence()
 	o.tell(&n)
 	o.receipt(r)
+}
+
+// enter takes one measurement, the i-th of a batch, and passes on what it
+// releases; or says why it is refused.
+func (o *owner) enter(n *news, i int, m *leadlinev1.SensorMeasurement) *leadlinev1.Refusal {
+	ps, err := o.measure(m)
+	if err != nil {
+		refused, ok := refusal(i, m, err)
+		if !ok {
+			panic(fmt.Sprintf("batch after %d, measurement %d: %v", o.sequence, i, err)) // only refusals are agreed
+		}
+		o.log.refused(refused)
+		o.subject.recent.add(m, refused)
+		return refused
+	}
+	o.subject.recent.add(m, nil)
+	o.publish(n, ps)
+	return nil
 }
 
 // wrongBatch says what is wrong with a batch as a whole.
@@ -96,6 +107,8 @@ func (o *owner) publish(n *news, ps []*summary.Posterior) {
 	o.posteriors -= uint64(len(gone))
 	o.latest.Store(o.sess.Latest())
 	o.log.now(o.sess.Latest())
+	o.trail.take(ps, gone)
+	o.recordAlarms()
 	o.told(ps, gone)
 	if o.at == nil || o.at.reply == leadlinev1.Reply_REPLY_NONE {
 		return
@@ -163,6 +176,7 @@ func (o *owner) closing() *leadlinev1.Closed {
 		o.ended = true
 		o.srv.finish(o)
 		o.farewell(true, o.sess.Hash(), "the drive has ended")
+		o.clearAlarms("the drive has ended")
 		o.log.Info("drive ended", "posteriors", o.posteriors, "accepted", accepted, "refused", refused, o.log.reasons())
 	}
 	c := &leadlinev1.Closed{

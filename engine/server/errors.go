@@ -42,6 +42,7 @@ var reasonCodes = map[leadlinev1.Reason]codes.Code{
 	leadlinev1.Reason_REASON_BAD_TOKEN:       codes.InvalidArgument,
 	leadlinev1.Reason_REASON_BAD_MAP:         codes.InvalidArgument,
 	leadlinev1.Reason_REASON_MAP_EXISTS:      codes.AlreadyExists,
+	leadlinev1.Reason_REASON_UNKNOWN_ALARM:   codes.NotFound,
 }
 
 // about says what a failure is about, for programs: vehicle, drive, map, suite,

@@ -34,6 +34,13 @@ func (s *Server) Follow(req *leadlinev1.FollowRequest, stream grpc.ServerStreami
 		return err
 	}
 	defer s.hub.leave(f, reader)
+	alarms := &alarmReader{} // of nothing
+	if req.GetAlarms() {
+		r := s.alarms.read()
+		defer s.alarms.leave(r)
+		alarms = r
+	}
+	token := req.GetResumeToken()
 	ctx := stream.Context()
 	timer := time.NewTimer(time.Hour)
 	defer timer.Stop()
@@ -45,12 +52,20 @@ func (s *Server) Follow(req *leadlinev1.FollowRequest, stream grpc.ServerStreami
 			return errFollowedElsewhere
 		default:
 		}
+		if a := s.alarms.take(alarms); a != nil {
+			if err := stream.Send(&leadlinev1.FollowResponse{Vehicle: a.GetVehicle(), News: &leadlinev1.FollowResponse_Alarm{Alarm: a}, ResumeToken: token}); err != nil {
+				return err
+			}
+			continue
+		}
 		u, again, err := s.hub.take(f, reader)
 		if err != nil {
 			return err
 		}
 		if u != nil {
-			if err := stream.Send(s.followed(f, u)); err != nil {
+			m := s.followed(f, u)
+			token = m.GetResumeToken()
+			if err := stream.Send(m); err != nil {
 				return err
 			}
 			continue
@@ -62,6 +77,7 @@ func (s *Server) Follow(req *leadlinev1.FollowRequest, stream grpc.ServerStreami
 		timer.Reset(wait)
 		select {
 		case <-f.wake:
+		case <-alarms.wake:
 		case <-timer.C:
 		case <-reader:
 			return errFollowedElsewhere
@@ -219,7 +235,9 @@ func (s *Server) followed(f *follower, u *update) *leadlinev1.FollowResponse {
 			p.Modes, p.Edges, p.Evidence = nil, nil, nil
 		}
 		if x := n.extra; x != nil {
-			p.Regions, m.Belief = x.regions, x.belief
+			if p.Regions, m.Belief = x.regions, x.belief; x.belief != nil {
+				m.Recent = u.of.recent.list()
+			}
 			if f.asking.area != nil {
 				p.AreaProbability = proto.Float64(x.inside)
 			}

@@ -35,7 +35,8 @@ type subject struct {
 	onMap          Map
 	lateNS         int64         // how late a posterior may be withdrawn
 	poke           chan struct{} // of one: asks the owner to call present
-	latest         *bulletin     // nil before the first
+	recent         recent
+	latest         *bulletin // nil before the first
 	end            *leadlinev1.Farewell
 	gone           bool // the server no longer knows it
 }

@@ -49,6 +49,9 @@ type mapUse struct {
 	described *leadlinev1.MapDescription // without the sessions
 	sessions  int
 	replaced  bool
+	outlines  outlines
+	checking  sync.Once
+	checked   string
 }
 
 func newAtlas(ms []Map) *atlas {
@@ -261,10 +264,25 @@ func (s *Server) DescribeMap(_ context.Context, req *leadlinev1.DescribeMapReque
 	if req.GetMap() == "" {
 		return nil, badField("map", "map is missing: give the name of a map")
 	}
-	if ds := s.atlas.describe(req.GetMap()); len(ds) == 1 {
-		return &leadlinev1.DescribeMapResponse{Map: ds[0]}, nil
+	ds := s.atlas.describe(req.GetMap())
+	if len(ds) != 1 {
+		return nil, s.unknownMap(req.GetMap())
 	}
-	return nil, s.unknownMap(req.GetMap())
+	out := &leadlinev1.DescribeMapResponse{Map: ds[0]}
+	if !req.GetCheck() {
+		return out, nil
+	}
+	m := s.atlas.acquire(req.GetMap())
+	if m == nil {
+		return nil, s.unknownMap(req.GetMap())
+	}
+	defer s.releaseMap(m)
+	if m.Check == nil {
+		return nil, refuse(leadlinev1.Reason_REASON_NOT_OFFERED, about{"map": m.Name, "field": "check"}, "map %q cannot be checked here: leave check out", m.Name)
+	}
+	m.checking.Do(func() { m.checked = m.Check() })
+	out.Check = m.checked
+	return out, nil
 }
 
 func (s *Server) unknownMap(name string) error {

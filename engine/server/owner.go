@@ -51,6 +51,8 @@ type owner struct {
 	out        []item      // replies that wait; no batch is taken while any do
 	log        driveLog
 	extras     *extras // for those who follow
+	trail      trail
+	alarms     map[alarmKey]uint64 // on record, with their numbers
 }
 
 // attachment joins a stream to an owner.
@@ -87,6 +89,7 @@ func newOwner(s *Server, req *leadlinev1.Open, m *mapUse, sess Session, beside *
 		streams: 1,
 	}
 	o.subject, o.extras = o.newSubject(), newExtras(sess, m.Space)
+	o.alarms = map[alarmKey]uint64{}
 	o.log = newDriveLog(s.cfg.Log, s.cfg.Now, o.vehicle, o.drive)
 	return o
 }
@@ -165,6 +168,7 @@ func (o *owner) leave() {
 	why := status.Convert(o.err).Message()
 	if !o.ended {
 		o.farewell(false, "", why)
+		o.clearAlarms("the drive was dropped: " + why)
 	}
 	o.srv.hub.forget(o.subject)
 	accepted, refused := o.counts()

@@ -54,7 +54,8 @@ func message(p *summary.Posterior, vehicle string, m Map, now time.Time) *leadli
 			Accepted: p.Counts.Accepted, Refused: p.Counts.Refused,
 			Pruned: p.Counts.Pruned, LeftMap: p.Counts.LeftMap, Restart: p.Counts.Restart,
 		},
-		GapS: p.GapS, Revises: p.Revises,
+		AlertLimitM: p.AlertLimitM,
+		GapS:        p.GapS, Revises: p.Revises,
 		OffMap: p.OffMap, Lost: p.Lost, LostAlarm: p.LostAlarm,
 		AsOf: timestamppb.New(now), AgeS: now.Sub(time.Unix(0, p.TimeNS)).Seconds(),
 	}
@@ -75,11 +76,7 @@ func message(p *summary.Posterior, vehicle string, m Map, now time.Time) *leadli
 	if p.Speed.Known {
 		out.Speed = &leadlinev1.SpeedEstimate{Mps: p.Speed.MPS, SigmaMps: p.Speed.SigmaMPS}
 	}
-	for _, q := range p.Nuisances {
-		n := &leadlinev1.Nuisance{}
-		n.Name, n.Unit, n.Mean, n.Sigma = sensor.InUnits(q.Name, q.Mean, q.Sigma)
-		out.Nuisances = append(out.Nuisances, n)
-	}
+	out.Nuisances = nuisances(p.Nuisances)
 	for _, e := range p.Evidence {
 		out.Evidence = append(out.Evidence, &leadlinev1.Evidence{
 			Sensor: e.Sensor, Number: e.Number, Kind: e.Kind, LogEvidence: e.LogEvidence,
@@ -87,6 +84,16 @@ func message(p *summary.Posterior, vehicle string, m Map, now time.Time) *leadli
 		})
 	}
 	monitored(out, p)
+	return out
+}
+
+func nuisances(qs []summary.Nuisance) []*leadlinev1.Nuisance {
+	var out []*leadlinev1.Nuisance
+	for _, q := range qs {
+		n := &leadlinev1.Nuisance{}
+		n.Name, n.Unit, n.Mean, n.Sigma = sensor.InUnits(q.Name, q.Mean, q.Sigma)
+		out = append(out, n)
+	}
 	return out
 }
 

@@ -192,6 +192,10 @@ func wrongCalls(t *testing.T) []wrongCall {
 		}},
 		{leadlinev1.Reason_REASON_UNKNOWN_MAP, "map", Config{}, open(func(o *leadlinev1.Open) { o.Header.Map = "moon" })},
 		{leadlinev1.Reason_REASON_UNKNOWN_SUITE, "suite", Config{}, open(func(o *leadlinev1.Open) { o.Header.Suite = "tank" })},
+		{leadlinev1.Reason_REASON_UNKNOWN_ALARM, "field", Config{}, func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
+			_, err := leadlinev1.NewPositionServiceClient(conn).SeeAlarm(limited(t), &leadlinev1.SeeAlarmRequest{Number: 7, Who: "somebody"})
+			return saidBy(err)
+		}},
 		{leadlinev1.Reason_REASON_UNKNOWN_VEHICLE, "-", Config{}, ask(&leadlinev1.WhereRequest{Vehicles: []string{"ghost"}})},
 		{leadlinev1.Reason_REASON_BAD_START, "vehicle", Config{}, open(func(o *leadlinev1.Open) {
 			o.Header = wire.FromHeader(wire.Header{Vehicle: "v", Map: "sea", Start: wire.Start{Point: farOff, SigmaM: 5}})

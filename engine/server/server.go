@@ -33,7 +33,9 @@ type Server struct {
 	predictions chan struct{} // and one a belief being carried on
 	searching   chan struct{} // and one a search of a whole map
 	streams     atomic.Int64
+	drawing     chan struct{} // and one a map being drawn
 	hub         *hub
+	alarms      *alarmBook
 	atlas       *atlas
 	// uploads is nil where none are taken; uploading holds a token each.
 	uploads   *Uploads
@@ -70,9 +72,11 @@ func New(cfg Config) (*Server, error) {
 		openings:    make(chan struct{}, cfg.Limits.Openings),
 		predictions: make(chan struct{}, cfg.Limits.Predictions),
 		searching:   make(chan struct{}, searchesAtOnce),
+		drawing:     make(chan struct{}, drawnAtOnce),
 		draining:    make(chan struct{}),
 		owners:      map[string]*owner{},
 		hub:         newHub(cfg.Limits, cfg.Now),
+		alarms:      newAlarmBook(cfg.Now),
 		atlas:       newAtlas(cfg.Maps),
 	}
 	s.grpc = grpc.NewServer(

@@ -51,6 +51,8 @@ type Posterior struct {
 	// not been located since. The session sets it.
 	LostAlarm  bool
 	Protection Protection
+	// AlertLimitM is the one of the options, which Radius95M is compared with.
+	AlertLimitM float64
 
 	Nuisances []Nuisance
 	// EntropyNats is the differential entropy of the place, in nats relative

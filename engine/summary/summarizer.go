@@ -115,6 +115,7 @@ func (s *Summarizer) Summarize(dst *Posterior, in *Input) error {
 	dst.Protection = s.protection(in, rms)
 	dst.Protection.RadiusM = math.Max(dst.Protection.RadiusM/scale, dst.Radius99M)
 	dst.OffMap, dst.Lost = in.off(), in.Lost
+	dst.AlertLimitM = s.opt.AlertLimitM
 	dst.Status = statusOf(in.Contradicted, dst.OffMap, best*(1-in.Lost), heavy, dst.Radius95M, s.opt.AlertLimitM)
 	return nil
 }

@@ -35,6 +35,21 @@ export class Client {
             input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/follow_pb.js").FollowRequest>;
             output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/follow_pb.js").FollowResponse>;
         };
+        trail: {
+            methodKind: "unary";
+            input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/trail_pb.js").TrailRequest>;
+            output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/trail_pb.js").TrailResponse>;
+        };
+        addSighting: {
+            methodKind: "unary";
+            input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/trail_pb.js").AddSightingRequest>;
+            output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/trail_pb.js").AddSightingResponse>;
+        };
+        seeAlarm: {
+            methodKind: "unary";
+            input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/alarm_pb.js").SeeAlarmRequest>;
+            output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/alarm_pb.js").SeeAlarmResponse>;
+        };
         listVehicles: {
             methodKind: "unary";
             input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/fleet_pb.js").ListVehiclesRequest>;
@@ -54,6 +69,11 @@ export class Client {
             methodKind: "unary";
             input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/map_pb.js").DescribeMapRequest>;
             output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/map_pb.js").DescribeMapResponse>;
+        };
+        drawMap: {
+            methodKind: "unary";
+            input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/draw_pb.js").DrawMapRequest>;
+            output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/draw_pb.js").DrawMapResponse>;
         };
         listSuites: {
             methodKind: "unary";
@@ -123,6 +143,7 @@ export class Client {
         areaProbability?: number | undefined;
         regionFractions?: number[] | undefined;
         resumeToken?: string | undefined;
+        alarms?: boolean | undefined;
     }) | undefined, options?: import("@connectrpc/connect").CallOptions | undefined): AsyncGenerator<import("./leadline/v1/follow_pb.js").FollowResponse, void, unknown>;
 }
 export type WhereWishes = import("@bufbuild/protobuf").MessageInitShape<typeof import("./leadline/v1/where_pb.js").WhereRequestSchema>;

@@ -108,7 +108,10 @@ type FollowRequest struct {
 	// request must be as it was. A stream is kept for some minutes after it broke
 	// and not beyond the server's run: else REASON_BAD_TOKEN, and the client
 	// follows without one. Empty: the present state of every vehicle comes first.
-	ResumeToken   string `protobuf:"bytes,8,opt,name=resume_token,json=resumeToken,proto3" json:"resume_token,omitempty"`
+	ResumeToken string `protobuf:"bytes,8,opt,name=resume_token,json=resumeToken,proto3" json:"resume_token,omitempty"`
+	// Tell of alarms, too, of all vehicles: those on record first, then each
+	// when something about it changes.
+	Alarms        bool `protobuf:"varint,9,opt,name=alarms,proto3" json:"alarms,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -199,6 +202,13 @@ func (x *FollowRequest) GetResumeToken() string {
 	return ""
 }
 
+func (x *FollowRequest) GetAlarms() bool {
+	if x != nil {
+		return x.Alarms
+	}
+	return false
+}
+
 // FollowResponse is news of one vehicle. Several posteriors may come together,
 // after a late measurement or a wait: only the last of them is told where an
 // area, DETAIL_REGION or DETAIL_BELIEF is asked for.
@@ -213,6 +223,7 @@ type FollowResponse struct {
 	//	*FollowResponse_Posterior
 	//	*FollowResponse_Withdrawn
 	//	*FollowResponse_Farewell
+	//	*FollowResponse_Alarm
 	News isFollowResponse_News `protobuf_oneof:"news"`
 	// With DETAIL_BELIEF, beside a posterior.
 	Belief *Belief `protobuf:"bytes,6,opt,name=belief,proto3" json:"belief,omitempty"`
@@ -221,7 +232,10 @@ type FollowResponse struct {
 	// min_interval_s, status_changes_only or area are not counted.
 	Skipped uint64 `protobuf:"varint,7,opt,name=skipped,proto3" json:"skipped,omitempty"`
 	// For resuming after this update.
-	ResumeToken   string `protobuf:"bytes,8,opt,name=resume_token,json=resumeToken,proto3" json:"resume_token,omitempty"`
+	ResumeToken string `protobuf:"bytes,8,opt,name=resume_token,json=resumeToken,proto3" json:"resume_token,omitempty"`
+	// With DETAIL_BELIEF, beside a posterior: the drive's last measurements, at
+	// most 12, in the order in which they came.
+	Recent        []*RecentMeasurement `protobuf:"bytes,9,rep,name=recent,proto3" json:"recent,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -304,6 +318,15 @@ func (x *FollowResponse) GetFarewell() *Farewell {
 	return nil
 }
 
+func (x *FollowResponse) GetAlarm() *AlarmRecord {
+	if x != nil {
+		if x, ok := x.News.(*FollowResponse_Alarm); ok {
+			return x.Alarm
+		}
+	}
+	return nil
+}
+
 func (x *FollowResponse) GetBelief() *Belief {
 	if x != nil {
 		return x.Belief
@@ -325,6 +348,13 @@ func (x *FollowResponse) GetResumeToken() string {
 	return ""
 }
 
+func (x *FollowResponse) GetRecent() []*RecentMeasurement {
+	if x != nil {
+		return x.Recent
+	}
+	return nil
+}
+
 type isFollowResponse_News interface {
 	isFollowResponse_News()
 }
@@ -344,11 +374,18 @@ type FollowResponse_Farewell struct {
 	Farewell *Farewell `protobuf:"bytes,5,opt,name=farewell,proto3,oneof"`
 }
 
+type FollowResponse_Alarm struct {
+	// An alarm as it now is. A stream that is resumed tells of all alarms again.
+	Alarm *AlarmRecord `protobuf:"bytes,10,opt,name=alarm,proto3,oneof"`
+}
+
 func (*FollowResponse_Posterior) isFollowResponse_News() {}
 
 func (*FollowResponse_Withdrawn) isFollowResponse_News() {}
 
 func (*FollowResponse_Farewell) isFollowResponse_News() {}
+
+func (*FollowResponse_Alarm) isFollowResponse_News() {}
 
 // Farewell is a drive's end.
 type Farewell struct {
@@ -419,7 +456,7 @@ var File_leadline_v1_follow_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_follow_proto_rawDesc = "" +
 	"\n" +
-	"\x18leadline/v1/follow.proto\x12\vleadline.v1\x1a\x18leadline/v1/belief.proto\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\"\xeb\x02\n" +
+	"\x18leadline/v1/follow.proto\x12\vleadline.v1\x1a\x17leadline/v1/alarm.proto\x1a\x18leadline/v1/belief.proto\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x17leadline/v1/trail.proto\"\x83\x03\n" +
 	"\rFollowRequest\x12\x1a\n" +
 	"\bvehicles\x18\x01 \x03(\tR\bvehicles\x12+\n" +
 	"\x06detail\x18\x02 \x01(\x0e2\x13.leadline.v1.DetailR\x06detail\x12$\n" +
@@ -428,17 +465,21 @@ const file_leadline_v1_follow_proto_rawDesc = "" +
 	"\x04area\x18\x05 \x01(\v2\x14.leadline.v1.PolygonR\x04area\x12.\n" +
 	"\x10area_probability\x18\x06 \x01(\x01H\x00R\x0fareaProbability\x88\x01\x01\x12)\n" +
 	"\x10region_fractions\x18\a \x03(\x01R\x0fregionFractions\x12!\n" +
-	"\fresume_token\x18\b \x01(\tR\vresumeTokenB\x13\n" +
-	"\x11_area_probability\"\xd7\x02\n" +
+	"\fresume_token\x18\b \x01(\tR\vresumeToken\x12\x16\n" +
+	"\x06alarms\x18\t \x01(\bR\x06alarmsB\x13\n" +
+	"\x11_area_probability\"\xc1\x03\n" +
 	"\x0eFollowResponse\x12\x18\n" +
 	"\avehicle\x18\x01 \x01(\tR\avehicle\x12\x14\n" +
 	"\x05drive\x18\x02 \x01(\tR\x05drive\x126\n" +
 	"\tposterior\x18\x03 \x01(\v2\x16.leadline.v1.PosteriorH\x00R\tposterior\x126\n" +
 	"\twithdrawn\x18\x04 \x01(\v2\x16.leadline.v1.WithdrawnH\x00R\twithdrawn\x123\n" +
-	"\bfarewell\x18\x05 \x01(\v2\x15.leadline.v1.FarewellH\x00R\bfarewell\x12+\n" +
+	"\bfarewell\x18\x05 \x01(\v2\x15.leadline.v1.FarewellH\x00R\bfarewell\x120\n" +
+	"\x05alarm\x18\n" +
+	" \x01(\v2\x18.leadline.v1.AlarmRecordH\x00R\x05alarm\x12+\n" +
 	"\x06belief\x18\x06 \x01(\v2\x13.leadline.v1.BeliefR\x06belief\x12\x18\n" +
 	"\askipped\x18\a \x01(\x04R\askipped\x12!\n" +
-	"\fresume_token\x18\b \x01(\tR\vresumeTokenB\x06\n" +
+	"\fresume_token\x18\b \x01(\tR\vresumeToken\x126\n" +
+	"\x06recent\x18\t \x03(\v2\x1e.leadline.v1.RecentMeasurementR\x06recentB\x06\n" +
 	"\x04news\"c\n" +
 	"\bFarewell\x12\x14\n" +
 	"\x05ended\x18\x01 \x01(\bR\x05ended\x12)\n" +
@@ -466,14 +507,16 @@ func file_leadline_v1_follow_proto_rawDescGZIP() []byte {
 var file_leadline_v1_follow_proto_enumTypes = make([]protoimpl.EnumInfo, 1)
 var file_leadline_v1_follow_proto_msgTypes = make([]protoimpl.MessageInfo, 3)
 var file_leadline_v1_follow_proto_goTypes = []any{
-	(Detail)(0),            // 0: leadline.v1.Detail
-	(*FollowRequest)(nil),  // 1: leadline.v1.FollowRequest
-	(*FollowResponse)(nil), // 2: leadline.v1.FollowResponse
-	(*Farewell)(nil),       // 3: leadline.v1.Farewell
-	(*Polygon)(nil),        // 4: leadline.v1.Polygon
-	(*Posterior)(nil),      // 5: leadline.v1.Posterior
-	(*Withdrawn)(nil),      // 6: leadline.v1.Withdrawn
-	(*Belief)(nil),         // 7: leadline.v1.Belief
+	(Detail)(0),               // 0: leadline.v1.Detail
+	(*FollowRequest)(nil),     // 1: leadline.v1.FollowRequest
+	(*FollowResponse)(nil),    // 2: leadline.v1.FollowResponse
+	(*Farewell)(nil),          // 3: leadline.v1.Farewell
+	(*Polygon)(nil),           // 4: leadline.v1.Polygon
+	(*Posterior)(nil),         // 5: leadline.v1.Posterior
+	(*Withdrawn)(nil),         // 6: leadline.v1.Withdrawn
+	(*AlarmRecord)(nil),       // 7: leadline.v1.AlarmRecord
+	(*Belief)(nil),            // 8: leadline.v1.Belief
+	(*RecentMeasurement)(nil), // 9: leadline.v1.RecentMeasurement
 }
 var file_leadline_v1_follow_proto_depIdxs = []int32{
 	0, // 0: leadline.v1.FollowRequest.detail:type_name -> leadline.v1.Detail
@@ -481,12 +524,14 @@ var file_leadline_v1_follow_proto_depIdxs = []int32{
 	5, // 2: leadline.v1.FollowResponse.posterior:type_name -> leadline.v1.Posterior
 	6, // 3: leadline.v1.FollowResponse.withdrawn:type_name -> leadline.v1.Withdrawn
 	3, // 4: leadline.v1.FollowResponse.farewell:type_name -> leadline.v1.Farewell
-	7, // 5: leadline.v1.FollowResponse.belief:type_name -> leadline.v1.Belief
-	6, // [6:6] is the sub-list for method output_type
-	6, // [6:6] is the sub-list for method input_type
-	6, // [6:6] is the sub-list for extension type_name
-	6, // [6:6] is the sub-list for extension extendee
-	0, // [0:6] is the sub-list for field type_name
+	7, // 5: leadline.v1.FollowResponse.alarm:type_name -> leadline.v1.AlarmRecord
+	8, // 6: leadline.v1.FollowResponse.belief:type_name -> leadline.v1.Belief
+	9, // 7: leadline.v1.FollowResponse.recent:type_name -> leadline.v1.RecentMeasurement
+	8, // [8:8] is the sub-list for method output_type
+	8, // [8:8] is the sub-list for method input_type
+	8, // [8:8] is the sub-list for extension type_name
+	8, // [8:8] is the sub-list for extension extendee
+	0, // [0:8] is the sub-list for field type_name
 }
 
 func init() { file_leadline_v1_follow_proto_init() }
@@ -494,14 +539,17 @@ func file_leadline_v1_follow_proto_init() {
 	if File_leadline_v1_follow_proto != nil {
 		return
 	}
+	file_leadline_v1_alarm_proto_init()
 	file_leadline_v1_belief_proto_init()
 	file_leadline_v1_place_proto_init()
 	file_leadline_v1_posterior_proto_init()
+	file_leadline_v1_trail_proto_init()
 	file_leadline_v1_follow_proto_msgTypes[0].OneofWrappers = []any{}
 	file_leadline_v1_follow_proto_msgTypes[1].OneofWrappers = []any{
 		(*FollowResponse_Posterior)(nil),
 		(*FollowResponse_Withdrawn)(nil),
 		(*FollowResponse_Farewell)(nil),
+		(*FollowResponse_Alarm)(nil),
 	}
 	type x struct{}
 	out := protoimpl.TypeBuilder{

@@ -157,7 +157,9 @@ func (x *ListMapsResponse) GetMaps() []*MapDescription {
 type DescribeMapRequest struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// Its name. Required.
-	Map           string `protobuf:"bytes,1,opt,name=map,proto3" json:"map,omitempty"`
+	Map string `protobuf:"bytes,1,opt,name=map,proto3" json:"map,omitempty"`
+	// Check the map, too: on a large one that takes some seconds the first time.
+	Check         bool `protobuf:"varint,2,opt,name=check,proto3" json:"check,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -199,10 +201,20 @@ func (x *DescribeMapRequest) GetMap() string {
 	return ""
 }
 
+func (x *DescribeMapRequest) GetCheck() bool {
+	if x != nil {
+		return x.Check
+	}
+	return false
+}
+
 // DescribeMapResponse is the answer.
 type DescribeMapResponse struct {
-	state         protoimpl.MessageState `protogen:"open.v1"`
-	Map           *MapDescription        `protobuf:"bytes,1,opt,name=map,proto3" json:"map,omitempty"`
+	state protoimpl.MessageState `protogen:"open.v1"`
+	Map   *MapDescription        `protobuf:"bytes,1,opt,name=map,proto3" json:"map,omitempty"`
+	// Where it was asked for: what there is to say of the map's parts, gaps,
+	// voids and errors, in lines of text.
+	Check         string `protobuf:"bytes,2,opt,name=check,proto3" json:"check,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -242,6 +254,13 @@ func (x *DescribeMapResponse) GetMap() *MapDescription {
 		return x.Map
 	}
 	return nil
+}
+
+func (x *DescribeMapResponse) GetCheck() string {
+	if x != nil {
+		return x.Check
+	}
+	return ""
 }
 
 // MapDescription says what a map is.
@@ -850,11 +869,13 @@ const file_leadline_v1_map_proto_rawDesc = "" +
 	"\x15leadline/v1/map.proto\x12\vleadline.v1\x1a\x17leadline/v1/place.proto\"\x11\n" +
 	"\x0fListMapsRequest\"C\n" +
 	"\x10ListMapsResponse\x12/\n" +
-	"\x04maps\x18\x01 \x03(\v2\x1b.leadline.v1.MapDescriptionR\x04maps\"&\n" +
+	"\x04maps\x18\x01 \x03(\v2\x1b.leadline.v1.MapDescriptionR\x04maps\"<\n" +
 	"\x12DescribeMapRequest\x12\x10\n" +
-	"\x03map\x18\x01 \x01(\tR\x03map\"D\n" +
+	"\x03map\x18\x01 \x01(\tR\x03map\x12\x14\n" +
+	"\x05check\x18\x02 \x01(\bR\x05check\"Z\n" +
 	"\x13DescribeMapResponse\x12-\n" +
-	"\x03map\x18\x01 \x01(\v2\x1b.leadline.v1.MapDescriptionR\x03map\"\xb0\x04\n" +
+	"\x03map\x18\x01 \x01(\v2\x1b.leadline.v1.MapDescriptionR\x03map\x12\x14\n" +
+	"\x05check\x18\x02 \x01(\tR\x05check\"\xb0\x04\n" +
 	"\x0eMapDescription\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12 \n" +
 	"\vfingerprint\x18\x02 \x01(\tR\vfingerprint\x12(\n" +

@@ -235,7 +235,10 @@ type Posterior struct {
 	Lost float64 `protobuf:"fixed64,36,opt,name=lost,proto3" json:"lost,omitempty"`
 	// Whether being lost is the likeliest, or was, and the vehicle has not been
 	// located since.
-	LostAlarm     bool `protobuf:"varint,37,opt,name=lost_alarm,json=lostAlarm,proto3" json:"lost_alarm,omitempty"`
+	LostAlarm bool `protobuf:"varint,37,opt,name=lost_alarm,json=lostAlarm,proto3" json:"lost_alarm,omitempty"`
+	// The alert limit of the vehicle's suite, m: what the 95 % radius must be
+	// within for the vehicle to be located.
+	AlertLimitM   float64 `protobuf:"fixed64,38,opt,name=alert_limit_m,json=alertLimitM,proto3" json:"alert_limit_m,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -527,6 +530,13 @@ func (x *Posterior) GetLostAlarm() bool {
 		return x.LostAlarm
 	}
 	return false
+}
+
+func (x *Posterior) GetAlertLimitM() float64 {
+	if x != nil {
+		return x.AlertLimitM
+	}
+	return 0
 }
 
 // Place is the cell of the greatest density.
@@ -1586,7 +1596,7 @@ var File_leadline_v1_posterior_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\n" +
-	"\x1bleadline/v1/posterior.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/place.proto\"\xdd\v\n" +
+	"\x1bleadline/v1/posterior.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/place.proto\"\x81\f\n" +
 	"\tPosterior\x12.\n" +
 	"\x04time\x18\x01 \x01(\v2\x1a.google.protobuf.TimestampR\x04time\x12\x18\n" +
 	"\avehicle\x18\x02 \x01(\tR\avehicle\x12\x10\n" +
@@ -1633,7 +1643,8 @@ const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\aoff_map\x18# \x01(\x01R\x06offMap\x12\x12\n" +
 	"\x04lost\x18$ \x01(\x01R\x04lost\x12\x1d\n" +
 	"\n" +
-	"lost_alarm\x18% \x01(\bR\tlostAlarmB\x13\n" +
+	"lost_alarm\x18% \x01(\bR\tlostAlarm\x12\"\n" +
+	"\ralert_limit_m\x18& \x01(\x01R\valertLimitMB\x13\n" +
 	"\x11_area_probability\"\xab\x01\n" +
 	"\x05Place\x121\n" +
 	"\bposition\x18\x01 \x01(\v2\x15.leadline.v1.PositionR\bposition\x12 \n" +

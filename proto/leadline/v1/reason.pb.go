@@ -89,6 +89,8 @@ const (
 	Reason_REASON_BAD_MAP Reason = 39
 	// A map of that name is here, and replace is not set. ALREADY_EXISTS.
 	Reason_REASON_MAP_EXISTS Reason = 40
+	// There is no alarm of that number on record. NOT_FOUND.
+	Reason_REASON_UNKNOWN_ALARM Reason = 41
 )
 
 // Enum value maps for Reason.
@@ -122,6 +124,7 @@ var (
 		38: "REASON_BAD_TOKEN",
 		39: "REASON_BAD_MAP",
 		40: "REASON_MAP_EXISTS",
+		41: "REASON_UNKNOWN_ALARM",
 	}
 	Reason_value = map[string]int32{
 		"REASON_UNSPECIFIED":     0,
@@ -152,6 +155,7 @@ var (
 		"REASON_BAD_TOKEN":       38,
 		"REASON_BAD_MAP":         39,
 		"REASON_MAP_EXISTS":      40,
+		"REASON_UNKNOWN_ALARM":   41,
 	}
 )
 
@@ -243,7 +247,7 @@ const file_leadline_v1_reason_proto_rawDesc = "" +
 	"\x18leadline/v1/reason.proto\x12\vleadline.v1\"P\n" +
 	"\aFailure\x12+\n" +
 	"\x06reason\x18\x01 \x01(\x0e2\x13.leadline.v1.ReasonR\x06reason\x12\x18\n" +
-	"\amessage\x18\x02 \x01(\tR\amessage*\x94\x05\n" +
+	"\amessage\x18\x02 \x01(\tR\amessage*\xae\x05\n" +
 	"\x06Reason\x12\x16\n" +
 	"\x12REASON_UNSPECIFIED\x10\x00\x12\x13\n" +
 	"\x0fREASON_UNUSABLE\x10\x01\x12\x16\n" +
@@ -272,7 +276,8 @@ const file_leadline_v1_reason_proto_rawDesc = "" +
 	"\x12REASON_NOT_OFFERED\x10%\x12\x14\n" +
 	"\x10REASON_BAD_TOKEN\x10&\x12\x12\n" +
 	"\x0eREASON_BAD_MAP\x10'\x12\x15\n" +
-	"\x11REASON_MAP_EXISTS\x10(B'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
+	"\x11REASON_MAP_EXISTS\x10(\x12\x18\n" +
+	"\x14REASON_UNKNOWN_ALARM\x10)B'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
 
 var (
 	file_leadline_v1_reason_proto_rawDescOnce sync.Once

@@ -22,10 +22,14 @@ const (
 	PositionService_Feed_FullMethodName          = "/leadline.v1.PositionService/Feed"
 	PositionService_Where_FullMethodName         = "/leadline.v1.PositionService/Where"
 	PositionService_Follow_FullMethodName        = "/leadline.v1.PositionService/Follow"
+	PositionService_Trail_FullMethodName         = "/leadline.v1.PositionService/Trail"
+	PositionService_AddSighting_FullMethodName   = "/leadline.v1.PositionService/AddSighting"
+	PositionService_SeeAlarm_FullMethodName      = "/leadline.v1.PositionService/SeeAlarm"
 	PositionService_ListVehicles_FullMethodName  = "/leadline.v1.PositionService/ListVehicles"
 	PositionService_EndDrive_FullMethodName      = "/leadline.v1.PositionService/EndDrive"
 	PositionService_ListMaps_FullMethodName      = "/leadline.v1.PositionService/ListMaps"
 	PositionService_DescribeMap_FullMethodName   = "/leadline.v1.PositionService/DescribeMap"
+	PositionService_DrawMap_FullMethodName       = "/leadline.v1.PositionService/DrawMap"
 	PositionService_ListSuites_FullMethodName    = "/leadline.v1.PositionService/ListSuites"
 	PositionService_DescribeSuite_FullMethodName = "/leadline.v1.PositionService/DescribeSuite"
 	PositionService_UploadMap_FullMethodName     = "/leadline.v1.PositionService/UploadMap"
@@ -53,6 +57,12 @@ type PositionServiceClient interface {
 	// Follow tells of vehicles as they move on, until the client has enough. A
 	// client that reads slowly is told the latest, and how much it missed.
 	Follow(ctx context.Context, in *FollowRequest, opts ...grpc.CallOption) (grpc.ServerStreamingClient[FollowResponse], error)
+	// Trail says what a vehicle's drive was like so far.
+	Trail(ctx context.Context, in *TrailRequest, opts ...grpc.CallOption) (*TrailResponse, error)
+	// AddSighting enters what somebody says of a vehicle.
+	AddSighting(ctx context.Context, in *AddSightingRequest, opts ...grpc.CallOption) (*AddSightingResponse, error)
+	// SeeAlarm says that somebody has seen an alarm.
+	SeeAlarm(ctx context.Context, in *SeeAlarmRequest, opts ...grpc.CallOption) (*SeeAlarmResponse, error)
 	// ListVehicles says who is here.
 	ListVehicles(ctx context.Context, in *ListVehiclesRequest, opts ...grpc.CallOption) (*ListVehiclesResponse, error)
 	// EndDrive ends a drive that its vehicle will not end.
@@ -61,6 +71,8 @@ type PositionServiceClient interface {
 	ListMaps(ctx context.Context, in *ListMapsRequest, opts ...grpc.CallOption) (*ListMapsResponse, error)
 	// DescribeMap says what one of them is.
 	DescribeMap(ctx context.Context, in *DescribeMapRequest, opts ...grpc.CallOption) (*DescribeMapResponse, error)
+	// DrawMap gives what of a map can be drawn.
+	DrawMap(ctx context.Context, in *DrawMapRequest, opts ...grpc.CallOption) (*DrawMapResponse, error)
 	// ListSuites says which suites drives may use.
 	ListSuites(ctx context.Context, in *ListSuitesRequest, opts ...grpc.CallOption) (*ListSuitesResponse, error)
 	// DescribeSuite says what one of them is.
@@ -119,6 +131,36 @@ func (c *positionServiceClient) Follow(ctx context.Context, in *FollowRequest, o
 // This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
 type PositionService_FollowClient = grpc.ServerStreamingClient[FollowResponse]
 
+func (c *positionServiceClient) Trail(ctx context.Context, in *TrailRequest, opts ...grpc.CallOption) (*TrailResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(TrailResponse)
+	err := c.cc.Invoke(ctx, PositionService_Trail_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *positionServiceClient) AddSighting(ctx context.Context, in *AddSightingRequest, opts ...grpc.CallOption) (*AddSightingResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(AddSightingResponse)
+	err := c.cc.Invoke(ctx, PositionService_AddSighting_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *positionServiceClient) SeeAlarm(ctx context.Context, in *SeeAlarmRequest, opts ...grpc.CallOption) (*SeeAlarmResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(SeeAlarmResponse)
+	err := c.cc.Invoke(ctx, PositionService_SeeAlarm_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
 func (c *positionServiceClient) ListVehicles(ctx context.Context, in *ListVehiclesRequest, opts ...grpc.CallOption) (*ListVehiclesResponse, error) {
 	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
 	out := new(ListVehiclesResponse)
@@ -153,6 +195,16 @@ func (c *positionServiceClient) DescribeMap(ctx context.Context, in *DescribeMap
 	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
 	out := new(DescribeMapResponse)
 	err := c.cc.Invoke(ctx, PositionService_DescribeMap_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *positionServiceClient) DrawMap(ctx context.Context, in *DrawMapRequest, opts ...grpc.CallOption) (*DrawMapResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(DrawMapResponse)
+	err := c.cc.Invoke(ctx, PositionService_DrawMap_FullMethodName, in, out, cOpts...)
 	if err != nil {
 		return nil, err
 	}
@@ -214,6 +266,12 @@ type PositionServiceServer interface {
 	// Follow tells of vehicles as they move on, until the client has enough. A
 	// client that reads slowly is told the latest, and how much it missed.
 	Follow(*FollowRequest, grpc.ServerStreamingServer[FollowResponse]) error
+	// Trail says what a vehicle's drive was like so far.
+	Trail(context.Context, *TrailRequest) (*TrailResponse, error)
+	// AddSighting enters what somebody says of a vehicle.
+	AddSighting(context.Context, *AddSightingRequest) (*AddSightingResponse, error)
+	// SeeAlarm says that somebody has seen an alarm.
+	SeeAlarm(context.Context, *SeeAlarmRequest) (*SeeAlarmResponse, error)
 	// ListVehicles says who is here.
 	ListVehicles(context.Context, *ListVehiclesRequest) (*ListVehiclesResponse, error)
 	// EndDrive ends a drive that its vehicle will not end.
@@ -222,6 +280,8 @@ type PositionServiceServer interface {
 	ListMaps(context.Context, *ListMapsRequest) (*ListMapsResponse, error)
 	// DescribeMap says what one of them is.
 	DescribeMap(context.Context, *DescribeMapRequest) (*DescribeMapResponse, error)
+	// DrawMap gives what of a map can be drawn.
+	DrawMap(context.Context, *DrawMapRequest) (*DrawMapResponse, error)
 	// ListSuites says which suites drives may use.
 	ListSuites(context.Context, *ListSuitesRequest) (*ListSuitesResponse, error)
 	// DescribeSuite says what one of them is.
@@ -247,6 +307,15 @@ func (UnimplementedPositionServiceServer) Where(context.Context, *WhereRequest) 
 func (UnimplementedPositionServiceServer) Follow(*FollowRequest, grpc.ServerStreamingServer[FollowResponse]) error {
 	return status.Error(codes.Unimplemented, "method Follow not implemented")
 }
+func (UnimplementedPositionServiceServer) Trail(context.Context, *TrailRequest) (*TrailResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method Trail not implemented")
+}
+func (UnimplementedPositionServiceServer) AddSighting(context.Context, *AddSightingRequest) (*AddSightingResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method AddSighting not implemented")
+}
+func (UnimplementedPositionServiceServer) SeeAlarm(context.Context, *SeeAlarmRequest) (*SeeAlarmResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method SeeAlarm not implemented")
+}
 func (UnimplementedPositionServiceServer) ListVehicles(context.Context, *ListVehiclesRequest) (*ListVehiclesResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method ListVehicles not implemented")
 }
@@ -258,6 +327,9 @@ func (UnimplementedPositionServiceServer) ListMaps(context.Context, *ListMapsReq
 }
 func (UnimplementedPositionServiceServer) DescribeMap(context.Context, *DescribeMapRequest) (*DescribeMapResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method DescribeMap not implemented")
+}
+func (UnimplementedPositionServiceServer) DrawMap(context.Context, *DrawMapRequest) (*DrawMapResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method DrawMap not implemented")
 }
 func (UnimplementedPositionServiceServer) ListSuites(context.Context, *ListSuitesRequest) (*ListSuitesResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method ListSuites not implemented")
@@ -324,6 +396,60 @@ func _PositionService_Follow_Handler(srv interface{}, stream grpc.ServerStream) 
 
 // This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
 type PositionService_FollowServer = grpc.ServerStreamingServer[FollowResponse]
+
+func _PositionService_Trail_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(TrailRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).Trail(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_Trail_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).Trail(ctx, req.(*TrailRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _PositionService_AddSighting_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(AddSightingRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).AddSighting(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_AddSighting_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).AddSighting(ctx, req.(*AddSightingRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _PositionService_SeeAlarm_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(SeeAlarmRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).SeeAlarm(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_SeeAlarm_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).SeeAlarm(ctx, req.(*SeeAlarmRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
 
 func _PositionService_ListVehicles_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
 	in := new(ListVehiclesRequest)
@@ -397,6 +523,24 @@ func _PositionService_DescribeMap_Handler(srv interface{}, ctx context.Context, 
 	return interceptor(ctx, in, info, handler)
 }
 
+func _PositionService_DrawMap_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(DrawMapRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).DrawMap(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_DrawMap_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).DrawMap(ctx, req.(*DrawMapRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
 func _PositionService_ListSuites_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
 	in := new(ListSuitesRequest)
 	if err := dec(in); err != nil {
@@ -452,6 +596,18 @@ var PositionService_ServiceDesc = grpc.ServiceDesc{
 			Handler:    _PositionService_Where_Handler,
 		},
 		{
+			MethodName: "Trail",
+			Handler:    _PositionService_Trail_Handler,
+		},
+		{
+			MethodName: "AddSighting",
+			Handler:    _PositionService_AddSighting_Handler,
+		},
+		{
+			MethodName: "SeeAlarm",
+			Handler:    _PositionService_SeeAlarm_Handler,
+		},
+		{
 			MethodName: "ListVehicles",
 			Handler:    _PositionService_ListVehicles_Handler,
 		},
@@ -466,6 +622,10 @@ var PositionService_ServiceDesc = grpc.ServiceDesc{
 		{
 			MethodName: "DescribeMap",
 			Handler:    _PositionService_DescribeMap_Handler,
+		},
+		{
+			MethodName: "DrawMap",
+			Handler:    _PositionService_DrawMap_Handler,
 		},
 		{
 			MethodName: "ListSuites",

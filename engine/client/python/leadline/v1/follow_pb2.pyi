@@ -1,6 +1,8 @@
+from leadline.v1 import alarm_pb2 as _alarm_pb2
 from leadline.v1 import belief_pb2 as _belief_pb2
 from leadline.v1 import place_pb2 as _place_pb2
 from leadline.v1 import posterior_pb2 as _posterior_pb2
+from leadline.v1 import trail_pb2 as _trail_pb2
 from google.protobuf.internal import containers as _containers
 from google.protobuf.internal import enum_type_wrapper as _enum_type_wrapper
 from google.protobuf import descriptor as _descriptor
@@ -25,7 +27,8 @@ class Farewell(_message.Message):
     def __init__(self, ended: bool = ..., posterior_sha256: _Optional[str] = ..., reason: _Optional[str] = ...) -> None: ...
 
 class FollowRequest(_message.Message):
-    __slots__ = ["area", "area_probability", "detail", "min_interval_s", "region_fractions", "resume_token", "status_changes_only", "vehicles"]
+    __slots__ = ["alarms", "area", "area_probability", "detail", "min_interval_s", "region_fractions", "resume_token", "status_changes_only", "vehicles"]
+    ALARMS_FIELD_NUMBER: _ClassVar[int]
     AREA_FIELD_NUMBER: _ClassVar[int]
     AREA_PROBABILITY_FIELD_NUMBER: _ClassVar[int]
     DETAIL_FIELD_NUMBER: _ClassVar[int]
@@ -34,6 +37,7 @@ class FollowRequest(_message.Message):
     RESUME_TOKEN_FIELD_NUMBER: _ClassVar[int]
     STATUS_CHANGES_ONLY_FIELD_NUMBER: _ClassVar[int]
     VEHICLES_FIELD_NUMBER: _ClassVar[int]
+    alarms: bool
     area: _place_pb2.Polygon
     area_probability: float
     detail: Detail
@@ -42,27 +46,31 @@ class FollowRequest(_message.Message):
     resume_token: str
     status_changes_only: bool
     vehicles: _containers.RepeatedScalarFieldContainer[str]
-    def __init__(self, vehicles: _Optional[_Iterable[str]] = ..., detail: _Optional[_Union[Detail, str]] = ..., min_interval_s: _Optional[float] = ..., status_changes_only: bool = ..., area: _Optional[_Union[_place_pb2.Polygon, _Mapping]] = ..., area_probability: _Optional[float] = ..., region_fractions: _Optional[_Iterable[float]] = ..., resume_token: _Optional[str] = ...) -> None: ...
+    def __init__(self, vehicles: _Optional[_Iterable[str]] = ..., detail: _Optional[_Union[Detail, str]] = ..., min_interval_s: _Optional[float] = ..., status_changes_only: bool = ..., area: _Optional[_Union[_place_pb2.Polygon, _Mapping]] = ..., area_probability: _Optional[float] = ..., region_fractions: _Optional[_Iterable[float]] = ..., resume_token: _Optional[str] = ..., alarms: bool = ...) -> None: ...
 
 class FollowResponse(_message.Message):
-    __slots__ = ["belief", "drive", "farewell", "posterior", "resume_token", "skipped", "vehicle", "withdrawn"]
+    __slots__ = ["alarm", "belief", "drive", "farewell", "posterior", "recent", "resume_token", "skipped", "vehicle", "withdrawn"]
+    ALARM_FIELD_NUMBER: _ClassVar[int]
     BELIEF_FIELD_NUMBER: _ClassVar[int]
     DRIVE_FIELD_NUMBER: _ClassVar[int]
     FAREWELL_FIELD_NUMBER: _ClassVar[int]
     POSTERIOR_FIELD_NUMBER: _ClassVar[int]
+    RECENT_FIELD_NUMBER: _ClassVar[int]
     RESUME_TOKEN_FIELD_NUMBER: _ClassVar[int]
     SKIPPED_FIELD_NUMBER: _ClassVar[int]
     VEHICLE_FIELD_NUMBER: _ClassVar[int]
     WITHDRAWN_FIELD_NUMBER: _ClassVar[int]
+    alarm: _alarm_pb2.AlarmRecord
     belief: _belief_pb2.Belief
     drive: str
     farewell: Farewell
     posterior: _posterior_pb2.Posterior
+    recent: _containers.RepeatedCompositeFieldContainer[_trail_pb2.RecentMeasurement]
     resume_token: str
     skipped: int
     vehicle: str
     withdrawn: _posterior_pb2.Withdrawn
-    def __init__(self, vehicle: _Optional[str] = ..., drive: _Optional[str] = ..., posterior: _Optional[_Union[_posterior_pb2.Posterior, _Mapping]] = ..., withdrawn: _Optional[_Union[_posterior_pb2.Withdrawn, _Mapping]] = ..., farewell: _Optional[_Union[Farewell, _Mapping]] = ..., belief: _Optional[_Union[_belief_pb2.Belief, _Mapping]] = ..., skipped: _Optional[int] = ..., resume_token: _Optional[str] = ...) -> None: ...
+    def __init__(self, vehicle: _Optional[str] = ..., drive: _Optional[str] = ..., posterior: _Optional[_Union[_posterior_pb2.Posterior, _Mapping]] = ..., withdrawn: _Optional[_Union[_posterior_pb2.Withdrawn, _Mapping]] = ..., farewell: _Optional[_Union[Farewell, _Mapping]] = ..., alarm: _Optional[_Union[_alarm_pb2.AlarmRecord, _Mapping]] = ..., belief: _Optional[_Union[_belief_pb2.Belief, _Mapping]] = ..., skipped: _Optional[int] = ..., resume_token: _Optional[str] = ..., recent: _Optional[_Iterable[_Union[_trail_pb2.RecentMeasurement, _Mapping]]] = ...) -> None: ...
 
 class Detail(int, metaclass=_enum_type_wrapper.EnumTypeWrapper):
     __slots__ = []

@@ -14,7 +14,7 @@ _sym_db = _symbol_database.Default()
 from leadline.v1 import place_pb2 as leadline_dot_v1_dot_place__pb2
 
 
-DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x15leadline/v1/map.proto\x12\x0bleadline.v1\x1a\x17leadline/v1/place.proto\"\x11\n\x0fListMapsRequest\"C\n\x10ListMapsResponse\x12/\n\x04maps\x18\x01 \x03(\x0b\x32\x1b.leadline.v1.MapDescriptionR\x04maps\"&\n\x12\x44\x65scribeMapRequest\x12\x10\n\x03map\x18\x01 \x01(\tR\x03map\"D\n\x13\x44\x65scribeMapResponse\x12-\n\x03map\x18\x01 \x01(\x0b\x32\x1b.leadline.v1.MapDescriptionR\x03map\"\xb0\x04\n\x0eMapDescription\x12\x12\n\x04name\x18\x01 \x01(\tR\x04name\x12 \n\x0b\x66ingerprint\x18\x02 \x01(\tR\x0b\x66ingerprint\x12(\n\x04kind\x18\x03 \x01(\x0e\x32\x14.leadline.v1.MapKindR\x04kind\x12\x34\n\nsouth_west\x18\x04 \x01(\x0b\x32\x15.leadline.v1.PositionR\tsouthWest\x12\x34\n\nnorth_east\x18\x05 \x01(\x0b\x32\x15.leadline.v1.PositionR\tnorthEast\x12\x16\n\x06source\x18\x06 \x01(\tR\x06source\x12\x18\n\x07licence\x18\x07 \x01(\tR\x07licence\x12%\n\x0evertical_datum\x18\x08 \x01(\tR\rverticalDatum\x12\x14\n\x05\x66rame\x18\t \x01(\tR\x05\x66rame\x12\x14\n\x05\x65\x64ges\x18\n \x01(\rR\x05\x65\x64ges\x12\x19\n\x08length_m\x18\x0b \x01(\x01R\x07lengthM\x12\x18\n\x07\x63olumns\x18\x0c \x01(\rR\x07\x63olumns\x12\x12\n\x04rows\x18\r \x01(\rR\x04rows\x12\x1b\n\tspacing_m\x18\x0e \x01(\x01R\x08spacingM\x12$\n\x0eheight_sigma_m\x18\x0f \x01(\x01R\x0cheightSigmaM\x12\x1a\n\x08sessions\x18\x10 \x01(\rR\x08sessions\x12%\n\x0eolder_sessions\x18\x11 \x01(\rR\rolderSessions\"\x13\n\x11ListSuitesRequest\",\n\x12ListSuitesResponse\x12\x16\n\x06suites\x18\x01 \x03(\tR\x06suites\"V\n\x14\x44\x65scribeSuiteRequest\x12\x14\n\x05suite\x18\x01 \x01(\tR\x05suite\x12(\n\x04kind\x18\x02 \x01(\x0e\x32\x14.leadline.v1.MapKindR\x04kind\"a\n\x15\x44\x65scribeSuiteResponse\x12\x12\n\x04name\x18\x01 \x01(\tR\x04name\x12\x12\n\x04yaml\x18\x02 \x01(\tR\x04yaml\x12 \n\x0b\x66ingerprint\x18\x03 \x01(\tR\x0b\x66ingerprint\"p\n\x10UploadMapRequest\x12\x39\n\tbeginning\x18\x01 \x01(\x0b\x32\x19.leadline.v1.MapBeginningH\x00R\tbeginning\x12\x16\n\x05\x63hunk\x18\x02 \x01(\x0cH\x00R\x05\x63hunkB\t\n\x07message\"\x94\x01\n\x0cMapBeginning\x12\x12\n\x04name\x18\x01 \x01(\tR\x04name\x12(\n\x04kind\x18\x02 \x01(\x0e\x32\x14.leadline.v1.MapKindR\x04kind\x12\x14\n\x05\x62ytes\x18\x03 \x01(\x04R\x05\x62ytes\x12\x16\n\x06sha256\x18\x04 \x01(\tR\x06sha256\x12\x18\n\x07replace\x18\x05 \x01(\x08R\x07replace\"B\n\x11UploadMapResponse\x12-\n\x03map\x18\x01 \x01(\x0b\x32\x1b.leadline.v1.MapDescriptionR\x03map*M\n\x07MapKind\x12\x18\n\x14MAP_KIND_UNSPECIFIED\x10\x00\x12\x12\n\x0eMAP_KIND_ROADS\x10\x01\x12\x14\n\x10MAP_KIND_HEIGHTS\x10\x02\x42\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
+DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x15leadline/v1/map.proto\x12\x0bleadline.v1\x1a\x17leadline/v1/place.proto\"\x11\n\x0fListMapsRequest\"C\n\x10ListMapsResponse\x12/\n\x04maps\x18\x01 \x03(\x0b\x32\x1b.leadline.v1.MapDescriptionR\x04maps\"<\n\x12\x44\x65scribeMapRequest\x12\x10\n\x03map\x18\x01 \x01(\tR\x03map\x12\x14\n\x05\x63heck\x18\x02 \x01(\x08R\x05\x63heck\"Z\n\x13\x44\x65scribeMapResponse\x12-\n\x03map\x18\x01 \x01(\x0b\x32\x1b.leadline.v1.MapDescriptionR\x03map\x12\x14\n\x05\x63heck\x18\x02 \x01(\tR\x05\x63heck\"\xb0\x04\n\x0eMapDescription\x12\x12\n\x04name\x18\x01 \x01(\tR\x04name\x12 \n\x0b\x66ingerprint\x18\x02 \x01(\tR\x0b\x66ingerprint\x12(\n\x04kind\x18\x03 \x01(\x0e\x32\x14.leadline.v1.MapKindR\x04kind\x12\x34\n\nsouth_west\x18\x04 \x01(\x0b\x32\x15.leadline.v1.PositionR\tsouthWest\x12\x34\n\nnorth_east\x18\x05 \x01(\x0b\x32\x15.leadline.v1.PositionR\tnorthEast\x12\x16\n\x06source\x18\x06 \x01(\tR\x06source\x12\x18\n\x07licence\x18\x07 \x01(\tR\x07licence\x12%\n\x0evertical_datum\x18\x08 \x01(\tR\rverticalDatum\x12\x14\n\x05\x66rame\x18\t \x01(\tR\x05\x66rame\x12\x14\n\x05\x65\x64ges\x18\n \x01(\rR\x05\x65\x64ges\x12\x19\n\x08length_m\x18\x0b \x01(\x01R\x07lengthM\x12\x18\n\x07\x63olumns\x18\x0c \x01(\rR\x07\x63olumns\x12\x12\n\x04rows\x18\r \x01(\rR\x04rows\x12\x1b\n\tspacing_m\x18\x0e \x01(\x01R\x08spacingM\x12$\n\x0eheight_sigma_m\x18\x0f \x01(\x01R\x0cheightSigmaM\x12\x1a\n\x08sessions\x18\x10 \x01(\rR\x08sessions\x12%\n\x0eolder_sessions\x18\x11 \x01(\rR\rolderSessions\"\x13\n\x11ListSuitesRequest\",\n\x12ListSuitesResponse\x12\x16\n\x06suites\x18\x01 \x03(\tR\x06suites\"V\n\x14\x44\x65scribeSuiteRequest\x12\x14\n\x05suite\x18\x01 \x01(\tR\x05suite\x12(\n\x04kind\x18\x02 \x01(\x0e\x32\x14.leadline.v1.MapKindR\x04kind\"a\n\x15\x44\x65scribeSuiteResponse\x12\x12\n\x04name\x18\x01 \x01(\tR\x04name\x12\x12\n\x04yaml\x18\x02 \x01(\tR\x04yaml\x12 \n\x0b\x66ingerprint\x18\x03 \x01(\tR\x0b\x66ingerprint\"p\n\x10UploadMapRequest\x12\x39\n\tbeginning\x18\x01 \x01(\x0b\x32\x19.leadline.v1.MapBeginningH\x00R\tbeginning\x12\x16\n\x05\x63hunk\x18\x02 \x01(\x0cH\x00R\x05\x63hunkB\t\n\x07message\"\x94\x01\n\x0cMapBeginning\x12\x12\n\x04name\x18\x01 \x01(\tR\x04name\x12(\n\x04kind\x18\x02 \x01(\x0e\x32\x14.leadline.v1.MapKindR\x04kind\x12\x14\n\x05\x62ytes\x18\x03 \x01(\x04R\x05\x62ytes\x12\x16\n\x06sha256\x18\x04 \x01(\tR\x06sha256\x12\x18\n\x07replace\x18\x05 \x01(\x08R\x07replace\"B\n\x11UploadMapResponse\x12-\n\x03map\x18\x01 \x01(\x0b\x32\x1b.leadline.v1.MapDescriptionR\x03map*M\n\x07MapKind\x12\x18\n\x14MAP_KIND_UNSPECIFIED\x10\x00\x12\x12\n\x0eMAP_KIND_ROADS\x10\x01\x12\x14\n\x10MAP_KIND_HEIGHTS\x10\x02\x42\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
 
 _builder.BuildMessageAndEnumDescriptors(DESCRIPTOR, globals())
 _builder.BuildTopDescriptorsAndMessages(DESCRIPTOR, 'leadline.v1.map_pb2', globals())
@@ -22,30 +22,30 @@ if _descriptor._USE_C_DESCRIPTORS == False:
 
   DESCRIPTOR._options = None
   DESCRIPTOR._serialized_options = b'Z%leadline/proto/leadline/v1;leadlinev1'
-  _MAPKIND._serialized_start=1411
-  _MAPKIND._serialized_end=1488
+  _MAPKIND._serialized_start=1455
+  _MAPKIND._serialized_end=1532
   _LISTMAPSREQUEST._serialized_start=63
   _LISTMAPSREQUEST._serialized_end=80
   _LISTMAPSRESPONSE._serialized_start=82
   _LISTMAPSRESPONSE._serialized_end=149
   _DESCRIBEMAPREQUEST._serialized_start=151
-  _DESCRIBEMAPREQUEST._serialized_end=189
-  _DESCRIBEMAPRESPONSE._serialized_start=191
-  _DESCRIBEMAPRESPONSE._serialized_end=259
-  _MAPDESCRIPTION._serialized_start=262
-  _MAPDESCRIPTION._serialized_end=822
-  _LISTSUITESREQUEST._serialized_start=824
-  _LISTSUITESREQUEST._serialized_end=843
-  _LISTSUITESRESPONSE._serialized_start=845
-  _LISTSUITESRESPONSE._serialized_end=889
-  _DESCRIBESUITEREQUEST._serialized_start=891
-  _DESCRIBESUITEREQUEST._serialized_end=977
-  _DESCRIBESUITERESPONSE._serialized_start=979
-  _DESCRIBESUITERESPONSE._serialized_end=1076
-  _UPLOADMAPREQUEST._serialized_start=1078
-  _UPLOADMAPREQUEST._serialized_end=1190
-  _MAPBEGINNING._serialized_start=1193
-  _MAPBEGINNING._serialized_end=1341
-  _UPLOADMAPRESPONSE._serialized_start=1343
-  _UPLOADMAPRESPONSE._serialized_end=1409
+  _DESCRIBEMAPREQUEST._serialized_end=211
+  _DESCRIBEMAPRESPONSE._serialized_start=213
+  _DESCRIBEMAPRESPONSE._serialized_end=303
+  _MAPDESCRIPTION._serialized_start=306
+  _MAPDESCRIPTION._serialized_end=866
+  _LISTSUITESREQUEST._serialized_start=868
+  _LISTSUITESREQUEST._serialized_end=887
+  _LISTSUITESRESPONSE._serialized_start=889
+  _LISTSUITESRESPONSE._serialized_end=933
+  _DESCRIBESUITEREQUEST._serialized_start=935
+  _DESCRIBESUITEREQUEST._serialized_end=1021
+  _DESCRIBESUITERESPONSE._serialized_start=1023
+  _DESCRIBESUITERESPONSE._serialized_end=1120
+  _UPLOADMAPREQUEST._serialized_start=1122
+  _UPLOADMAPREQUEST._serialized_end=1234
+  _MAPBEGINNING._serialized_start=1237
+  _MAPBEGINNING._serialized_end=1385
+  _UPLOADMAPRESPONSE._serialized_start=1387
+  _UPLOADMAPRESPONSE._serialized_end=1453
 # @@protoc_insertion_point(module_scope)

@@ -11,16 +11,20 @@ MAP_KIND_ROADS: MapKind
 MAP_KIND_UNSPECIFIED: MapKind
 
 class DescribeMapRequest(_message.Message):
-    __slots__ = ["map"]
+    __slots__ = ["check", "map"]
+    CHECK_FIELD_NUMBER: _ClassVar[int]
     MAP_FIELD_NUMBER: _ClassVar[int]
+    check: bool
     map: str
-    def __init__(self, map: _Optional[str] = ...) -> None: ...
+    def __init__(self, map: _Optional[str] = ..., check: bool = ...) -> None: ...
 
 class DescribeMapResponse(_message.Message):
-    __slots__ = ["map"]
+    __slots__ = ["check", "map"]
+    CHECK_FIELD_NUMBER: _ClassVar[int]
     MAP_FIELD_NUMBER: _ClassVar[int]
+    check: str
     map: MapDescription
-    def __init__(self, map: _Optional[_Union[MapDescription, _Mapping]] = ...) -> None: ...
+    def __init__(self, map: _Optional[_Union[MapDescription, _Mapping]] = ..., check: _Optional[str] = ...) -> None: ...
 
 class DescribeSuiteRequest(_message.Message):
     __slots__ = ["kind", "suite"]

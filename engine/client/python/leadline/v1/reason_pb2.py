@@ -13,7 +13,7 @@ _sym_db = _symbol_database.Default()
 
 
 
-DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x18leadline/v1/reason.proto\x12\x0bleadline.v1\"P\n\x07\x46\x61ilure\x12+\n\x06reason\x18\x01 \x01(\x0e\x32\x13.leadline.v1.ReasonR\x06reason\x12\x18\n\x07message\x18\x02 \x01(\tR\x07message*\x94\x05\n\x06Reason\x12\x16\n\x12REASON_UNSPECIFIED\x10\x00\x12\x13\n\x0fREASON_UNUSABLE\x10\x01\x12\x16\n\x12REASON_WRONG_SPACE\x10\x02\x12\x13\n\x0fREASON_TOO_LATE\x10\x03\x12\x14\n\x10REASON_TOO_EARLY\x10\x04\x12\x16\n\x12REASON_CONFLICTING\x10\x05\x12\x13\n\x0fREASON_TOO_MUCH\x10\x07\x12\x14\n\x10REASON_BAD_FIELD\x10\x14\x12\x18\n\x14REASON_WRONG_MESSAGE\x10\x15\x12\x16\n\x12REASON_UNKNOWN_MAP\x10\x16\x12\x18\n\x14REASON_UNKNOWN_SUITE\x10\x17\x12\x1a\n\x16REASON_UNKNOWN_VEHICLE\x10\x18\x12\x14\n\x10REASON_BAD_START\x10\x19\x12\x17\n\x13REASON_OTHER_HEADER\x10\x1a\x12\x16\n\x12REASON_OTHER_DRIVE\x10\x1b\x12\x17\n\x13REASON_OUT_OF_ORDER\x10\x1c\x12\x16\n\x12REASON_DRIVE_ENDED\x10\x1d\x12\x17\n\x13REASON_NO_POSTERIOR\x10\x1e\x12\x16\n\x12REASON_SERVER_FULL\x10\x1f\x12\x11\n\rREASON_SILENT\x10 \x12\x15\n\x11REASON_TAKEN_OVER\x10!\x12\x13\n\x0fREASON_REPLACED\x10\"\x12\x13\n\x0fREASON_STOPPING\x10#\x12\x19\n\x15REASON_SESSION_FAILED\x10$\x12\x16\n\x12REASON_NOT_OFFERED\x10%\x12\x14\n\x10REASON_BAD_TOKEN\x10&\x12\x12\n\x0eREASON_BAD_MAP\x10\'\x12\x15\n\x11REASON_MAP_EXISTS\x10(B\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
+DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x18leadline/v1/reason.proto\x12\x0bleadline.v1\"P\n\x07\x46\x61ilure\x12+\n\x06reason\x18\x01 \x01(\x0e\x32\x13.leadline.v1.ReasonR\x06reason\x12\x18\n\x07message\x18\x02 \x01(\tR\x07message*\xae\x05\n\x06Reason\x12\x16\n\x12REASON_UNSPECIFIED\x10\x00\x12\x13\n\x0fREASON_UNUSABLE\x10\x01\x12\x16\n\x12REASON_WRONG_SPACE\x10\x02\x12\x13\n\x0fREASON_TOO_LATE\x10\x03\x12\x14\n\x10REASON_TOO_EARLY\x10\x04\x12\x16\n\x12REASON_CONFLICTING\x10\x05\x12\x13\n\x0fREASON_TOO_MUCH\x10\x07\x12\x14\n\x10REASON_BAD_FIELD\x10\x14\x12\x18\n\x14REASON_WRONG_MESSAGE\x10\x15\x12\x16\n\x12REASON_UNKNOWN_MAP\x10\x16\x12\x18\n\x14REASON_UNKNOWN_SUITE\x10\x17\x12\x1a\n\x16REASON_UNKNOWN_VEHICLE\x10\x18\x12\x14\n\x10REASON_BAD_START\x10\x19\x12\x17\n\x13REASON_OTHER_HEADER\x10\x1a\x12\x16\n\x12REASON_OTHER_DRIVE\x10\x1b\x12\x17\n\x13REASON_OUT_OF_ORDER\x10\x1c\x12\x16\n\x12REASON_DRIVE_ENDED\x10\x1d\x12\x17\n\x13REASON_NO_POSTERIOR\x10\x1e\x12\x16\n\x12REASON_SERVER_FULL\x10\x1f\x12\x11\n\rREASON_SILENT\x10 \x12\x15\n\x11REASON_TAKEN_OVER\x10!\x12\x13\n\x0fREASON_REPLACED\x10\"\x12\x13\n\x0fREASON_STOPPING\x10#\x12\x19\n\x15REASON_SESSION_FAILED\x10$\x12\x16\n\x12REASON_NOT_OFFERED\x10%\x12\x14\n\x10REASON_BAD_TOKEN\x10&\x12\x12\n\x0eREASON_BAD_MAP\x10\'\x12\x15\n\x11REASON_MAP_EXISTS\x10(\x12\x18\n\x14REASON_UNKNOWN_ALARM\x10)B\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
 
 _builder.BuildMessageAndEnumDescriptors(DESCRIPTOR, globals())
 _builder.BuildTopDescriptorsAndMessages(DESCRIPTOR, 'leadline.v1.reason_pb2', globals())
@@ -22,7 +22,7 @@ if _descriptor._USE_C_DESCRIPTORS == False:
   DESCRIPTOR._options = None
   DESCRIPTOR._serialized_options = b'Z%leadline/proto/leadline/v1;leadlinev1'
   _REASON._serialized_start=124
-  _REASON._serialized_end=784
+  _REASON._serialized_end=810
   _FAILURE._serialized_start=41
   _FAILURE._serialized_end=121
 # @@protoc_insertion_point(module_scope)

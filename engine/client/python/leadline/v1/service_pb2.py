@@ -11,14 +11,17 @@ from google.protobuf import symbol_database as _symbol_database
 _sym_db = _symbol_database.Default()
 
 
+from leadline.v1 import alarm_pb2 as leadline_dot_v1_dot_alarm__pb2
+from leadline.v1 import draw_pb2 as leadline_dot_v1_dot_draw__pb2
 from leadline.v1 import feed_pb2 as leadline_dot_v1_dot_feed__pb2
 from leadline.v1 import fleet_pb2 as leadline_dot_v1_dot_fleet__pb2
 from leadline.v1 import follow_pb2 as leadline_dot_v1_dot_follow__pb2
 from leadline.v1 import map_pb2 as leadline_dot_v1_dot_map__pb2
+from leadline.v1 import trail_pb2 as leadline_dot_v1_dot_trail__pb2
 from leadline.v1 import where_pb2 as leadline_dot_v1_dot_where__pb2
 
 
-DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x19leadline/v1/service.proto\x12\x0bleadline.v1\x1a\x16leadline/v1/feed.proto\x1a\x17leadline/v1/fleet.proto\x1a\x18leadline/v1/follow.proto\x1a\x15leadline/v1/map.proto\x1a\x17leadline/v1/where.proto2\x85\x06\n\x0fPositionService\x12?\n\x04\x46\x65\x65\x64\x12\x18.leadline.v1.FeedRequest\x1a\x19.leadline.v1.FeedResponse(\x01\x30\x01\x12>\n\x05Where\x12\x19.leadline.v1.WhereRequest\x1a\x1a.leadline.v1.WhereResponse\x12\x43\n\x06\x46ollow\x12\x1a.leadline.v1.FollowRequest\x1a\x1b.leadline.v1.FollowResponse0\x01\x12S\n\x0cListVehicles\x12 .leadline.v1.ListVehiclesRequest\x1a!.leadline.v1.ListVehiclesResponse\x12G\n\x08\x45ndDrive\x12\x1c.leadline.v1.EndDriveRequest\x1a\x1d.leadline.v1.EndDriveResponse\x12G\n\x08ListMaps\x12\x1c.leadline.v1.ListMapsRequest\x1a\x1d.leadline.v1.ListMapsResponse\x12P\n\x0b\x44\x65scribeMap\x12\x1f.leadline.v1.DescribeMapRequest\x1a .leadline.v1.DescribeMapResponse\x12M\n\nListSuites\x12\x1e.leadline.v1.ListSuitesRequest\x1a\x1f.leadline.v1.ListSuitesResponse\x12V\n\rDescribeSuite\x12!.leadline.v1.DescribeSuiteRequest\x1a\".leadline.v1.DescribeSuiteResponse\x12L\n\tUploadMap\x12\x1d.leadline.v1.UploadMapRequest\x1a\x1e.leadline.v1.UploadMapResponse(\x01\x42\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
+DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x19leadline/v1/service.proto\x12\x0bleadline.v1\x1a\x17leadline/v1/alarm.proto\x1a\x16leadline/v1/draw.proto\x1a\x16leadline/v1/feed.proto\x1a\x17leadline/v1/fleet.proto\x1a\x18leadline/v1/follow.proto\x1a\x15leadline/v1/map.proto\x1a\x17leadline/v1/trail.proto\x1a\x17leadline/v1/where.proto2\xa6\x08\n\x0fPositionService\x12?\n\x04\x46\x65\x65\x64\x12\x18.leadline.v1.FeedRequest\x1a\x19.leadline.v1.FeedResponse(\x01\x30\x01\x12>\n\x05Where\x12\x19.leadline.v1.WhereRequest\x1a\x1a.leadline.v1.WhereResponse\x12\x43\n\x06\x46ollow\x12\x1a.leadline.v1.FollowRequest\x1a\x1b.leadline.v1.FollowResponse0\x01\x12>\n\x05Trail\x12\x19.leadline.v1.TrailRequest\x1a\x1a.leadline.v1.TrailResponse\x12P\n\x0b\x41\x64\x64Sighting\x12\x1f.leadline.v1.AddSightingRequest\x1a .leadline.v1.AddSightingResponse\x12G\n\x08SeeAlarm\x12\x1c.leadline.v1.SeeAlarmRequest\x1a\x1d.leadline.v1.SeeAlarmResponse\x12S\n\x0cListVehicles\x12 .leadline.v1.ListVehiclesRequest\x1a!.leadline.v1.ListVehiclesResponse\x12G\n\x08\x45ndDrive\x12\x1c.leadline.v1.EndDriveRequest\x1a\x1d.leadline.v1.EndDriveResponse\x12G\n\x08ListMaps\x12\x1c.leadline.v1.ListMapsRequest\x1a\x1d.leadline.v1.ListMapsResponse\x12P\n\x0b\x44\x65scribeMap\x12\x1f.leadline.v1.DescribeMapRequest\x1a .leadline.v1.DescribeMapResponse\x12\x44\n\x07\x44rawMap\x12\x1b.leadline.v1.DrawMapRequest\x1a\x1c.leadline.v1.DrawMapResponse\x12M\n\nListSuites\x12\x1e.leadline.v1.ListSuitesRequest\x1a\x1f.leadline.v1.ListSuitesResponse\x12V\n\rDescribeSuite\x12!.leadline.v1.DescribeSuiteRequest\x1a\".leadline.v1.DescribeSuiteResponse\x12L\n\tUploadMap\x12\x1d.leadline.v1.UploadMapRequest\x1a\x1e.leadline.v1.UploadMapResponse(\x01\x42\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
 
 _builder.BuildMessageAndEnumDescriptors(DESCRIPTOR, globals())
 _builder.BuildTopDescriptorsAndMessages(DESCRIPTOR, 'leadline.v1.service_pb2', globals())
@@ -26,6 +29,6 @@ if _descriptor._USE_C_DESCRIPTORS == False:
 
   DESCRIPTOR._options = None
   DESCRIPTOR._serialized_options = b'Z%leadline/proto/leadline/v1;leadlinev1'
-  _POSITIONSERVICE._serialized_start=166
-  _POSITIONSERVICE._serialized_end=939
+  _POSITIONSERVICE._serialized_start=240
+  _POSITIONSERVICE._serialized_end=1302
 # @@protoc_insertion_point(module_scope)

@@ -6,7 +6,9 @@ import type { GenEnum, GenFile, GenMessage } from "@bufbuild/protobuf/codegenv2"
 import type { Message } from "@bufbuild/protobuf";
 import type { Polygon } from "./place_pb.js";
 import type { Posterior, Withdrawn } from "./posterior_pb.js";
+import type { AlarmRecord } from "./alarm_pb.js";
 import type { Belief } from "./belief_pb.js";
+import type { RecentMeasurement } from "./trail_pb.js";
 
 /**
  * Describes the file leadline/v1/follow.proto.
@@ -81,6 +83,14 @@ export declare type FollowRequest = Message<"leadline.v1.FollowRequest"> & {
    * @generated from field: string resume_token = 8;
    */
   resumeToken: string;
+
+  /**
+   * Tell of alarms, too, of all vehicles: those on record first, then each
+   * when something about it changes.
+   *
+   * @generated from field: bool alarms = 9;
+   */
+  alarms: boolean;
 };
 
 /**
@@ -138,6 +148,14 @@ export declare type FollowResponse = Message<"leadline.v1.FollowResponse"> & {
      */
     value: Farewell;
     case: "farewell";
+  } | {
+    /**
+     * An alarm as it now is. A stream that is resumed tells of all alarms again.
+     *
+     * @generated from field: leadline.v1.AlarmRecord alarm = 10;
+     */
+    value: AlarmRecord;
+    case: "alarm";
   } | { case: undefined; value?: undefined };
 
   /**
@@ -162,6 +180,14 @@ export declare type FollowResponse = Message<"leadline.v1.FollowResponse"> & {
    * @generated from field: string resume_token = 8;
    */
   resumeToken: string;
+
+  /**
+   * With DETAIL_BELIEF, beside a posterior: the drive's last measurements, at
+   * most 12, in the order in which they came.
+   *
+   * @generated from field: repeated leadline.v1.RecentMeasurement recent = 9;
+   */
+  recent: RecentMeasurement[];
 };
 
 /**

@@ -55,6 +55,13 @@ export declare type DescribeMapRequest = Message<"leadline.v1.DescribeMapRequest
    * @generated from field: string map = 1;
    */
   map: string;
+
+  /**
+   * Check the map, too: on a large one that takes some seconds the first time.
+   *
+   * @generated from field: bool check = 2;
+   */
+  check: boolean;
 };
 
 /**
@@ -73,6 +80,14 @@ export declare type DescribeMapResponse = Message<"leadline.v1.DescribeMapRespon
    * @generated from field: leadline.v1.MapDescription map = 1;
    */
   map?: MapDescription | undefined;
+
+  /**
+   * Where it was asked for: what there is to say of the map's parts, gaps,
+   * voids and errors, in lines of text.
+   *
+   * @generated from field: string check = 2;
+   */
+  check: string;
 };
 
 /**

@@ -283,6 +283,14 @@ export declare type Posterior = Message<"leadline.v1.Posterior"> & {
    * @generated from field: bool lost_alarm = 37;
    */
   lostAlarm: boolean;
+
+  /**
+   * The alert limit of the vehicle's suite, m: what the 95 % radius must be
+   * within for the vehicle to be located.
+   *
+   * @generated from field: double alert_limit_m = 38;
+   */
+  alertLimitM: number;
 };
 
 /**

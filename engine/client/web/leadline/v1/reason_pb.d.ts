@@ -243,6 +243,13 @@ export enum Reason {
    * @generated from enum value: REASON_MAP_EXISTS = 40;
    */
   MAP_EXISTS = 40,
+
+  /**
+   * There is no alarm of that number on record. NOT_FOUND.
+   *
+   * @generated from enum value: REASON_UNKNOWN_ALARM = 41;
+   */
+  UNKNOWN_ALARM = 41,
 }
 
 /**

@@ -6,8 +6,11 @@ import type { GenFile, GenService } from "@bufbuild/protobuf/codegenv2";
 import type { FeedRequestSchema, FeedResponseSchema } from "./feed_pb.js";
 import type { WhereRequestSchema, WhereResponseSchema } from "./where_pb.js";
 import type { FollowRequestSchema, FollowResponseSchema } from "./follow_pb.js";
+import type { AddSightingRequestSchema, AddSightingResponseSchema, TrailRequestSchema, TrailResponseSchema } from "./trail_pb.js";
+import type { SeeAlarmRequestSchema, SeeAlarmResponseSchema } from "./alarm_pb.js";
 import type { EndDriveRequestSchema, EndDriveResponseSchema, ListVehiclesRequestSchema, ListVehiclesResponseSchema } from "./fleet_pb.js";
 import type { DescribeMapRequestSchema, DescribeMapResponseSchema, DescribeSuiteRequestSchema, DescribeSuiteResponseSchema, ListMapsRequestSchema, ListMapsResponseSchema, ListSuitesRequestSchema, ListSuitesResponseSchema, UploadMapRequestSchema, UploadMapResponseSchema } from "./map_pb.js";
+import type { DrawMapRequestSchema, DrawMapResponseSchema } from "./draw_pb.js";
 
 /**
  * Describes the file leadline/v1/service.proto.
@@ -61,6 +64,36 @@ export declare const PositionService: GenService<{
     output: typeof FollowResponseSchema;
   },
   /**
+   * Trail says what a vehicle's drive was like so far.
+   *
+   * @generated from rpc leadline.v1.PositionService.Trail
+   */
+  trail: {
+    methodKind: "unary";
+    input: typeof TrailRequestSchema;
+    output: typeof TrailResponseSchema;
+  },
+  /**
+   * AddSighting enters what somebody says of a vehicle.
+   *
+   * @generated from rpc leadline.v1.PositionService.AddSighting
+   */
+  addSighting: {
+    methodKind: "unary";
+    input: typeof AddSightingRequestSchema;
+    output: typeof AddSightingResponseSchema;
+  },
+  /**
+   * SeeAlarm says that somebody has seen an alarm.
+   *
+   * @generated from rpc leadline.v1.PositionService.SeeAlarm
+   */
+  seeAlarm: {
+    methodKind: "unary";
+    input: typeof SeeAlarmRequestSchema;
+    output: typeof SeeAlarmResponseSchema;
+  },
+  /**
    * ListVehicles says who is here.
    *
    * @generated from rpc leadline.v1.PositionService.ListVehicles
@@ -99,6 +132,16 @@ export declare const PositionService: GenService<{
     methodKind: "unary";
     input: typeof DescribeMapRequestSchema;
     output: typeof DescribeMapResponseSchema;
+  },
+  /**
+   * DrawMap gives what of a map can be drawn.
+   *
+   * @generated from rpc leadline.v1.PositionService.DrawMap
+   */
+  drawMap: {
+    methodKind: "unary";
+    input: typeof DrawMapRequestSchema;
+    output: typeof DrawMapResponseSchema;
   },
   /**
    * ListSuites says which suites drives may use.
