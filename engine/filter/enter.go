@@ -164,10 +164,8 @@ func (g *gaussian) onLine(k, heading int, at *Columns, j int, e Entry) (line gau
 func (b *Belief) inject(space LineSpace, from *Gaussians, places []Nearest, keep, scale float64, w *Workspace) {
 	k := len(b.Quantities)
 	lines := space.Lines(b.Level)
-	mv := mover{k: k, dim: 1, out: &w.out, angular: angularMask(b.Quantities), lines: lines}
-	if w.departs {
-		mv.departed = &w.departed
-	}
+	mv := w.newMover(b, Step{})
+	mv.lines = lines
 	w.out.reset()
 	var g gaussian
 	for i := range b.Mass {

@@ -20,105 +20,6 @@ type gaussian struct {
 	cov  [maxPacked]float64 // packed
 }
 
-// advance sets g to the Gaussian of F x + add + w, w ~ N(0, q); f nil is the
-// identity. only is the one row in which F differs from the identity, or -1 if
-// there are several.
-func (g *gaussian) advance(k int, f, add, q []float64, only int) {
-	switch {
-	case f == nil:
-	case only >= 0:
-		g.advanceRow(k, f[only*k:only*k+k], only)
-	default:
-		g.advanceAll(k, f)
-	}
-	for i := range k {
-		g.mean[i] += add[i]
-	}
-	for i, v := range q {
-		g.cov[i] += v
-	}
-}
-
-// advanceRow replaces quantity d by row·x: the covariances of d alone change.
-func (g *gaussian) advanceRow(k int, row []float64, d int) {
-	var c [MaxK]float64 // C rowᵀ
-	mean, v := 0.0, 0.0
-	for j, f := range row {
-		if f == 0 {
-			continue
-		}
-		mean += float64(f * g.mean[j])
-		for i := range k {
-			c[i] += float64(f * g.at(i, j))
-		}
-	}
-	for j, f := range row {
-		v += float64(f * c[j])
-	}
-	g.mean[d] = mean
-	for i := range k {
-		if i < d {
-			g.cov[Packed(d, i)] = c[i]
-		} else {
-			g.cov[Packed(i, d)] = c[i]
-		}
-	}
-	g.cov[Packed(d, d)] = v
-}
-
-func (g *gaussian) advanceAll(k int, f []float64) {
-	var fc [MaxK][MaxK]float64
-	var mean [MaxK]float64
-	for i := range k {
-		row := f[i*k : i*k+k]
-		sum := 0.0
-		for j, v := range row {
-			sum += float64(v * g.mean[j])
-		}
-		mean[i] = sum
-		for j := range k {
-			s := 0.0
-			for l, v := range row {
-				if v != 0 {
-					s += float64(v * g.at(l, j))
-				}
-			}
-			fc[i][j] = s
-		}
-	}
-	for i := range k {
-		for j := 0; j <= i; j++ {
-			s := 0.0
-			for l, v := range f[j*k : j*k+k] {
-				if v != 0 {
-					s += float64(fc[i][l] * v)
-				}
-			}
-			g.cov[Packed(i, j)] = s
-		}
-	}
-	g.mean = mean
-}
-
-// onlyRow returns the one row in which a k×k matrix differs from the identity,
-// -1 if there are several.
-func onlyRow(k int, f []float64) int {
-	only := -1
-	for i, v := range f {
-		row, want := i/k, 0.0
-		if row == i%k {
-			want = 1
-		}
-		if v != want && row != only {
-			if only >= 0 {
-				return -1
-			}
-			only = row
-		}
-	}
-	return max(only, 0)
-}
-
 func (g *gaussian) at(i, j int) float64 {
 	if i < j {
 		i, j = j, i
@@ -168,26 +69,38 @@ func between(a, b edge) cut {
 	return cut{share, mean, math.Max(v, 0)}
 }
 
-// truncate returns g restricted to a cut of quantity d: mass, mean and
-// covariance of the truncated distribution, by regression on d.
-func (g *gaussian) truncate(k, d int, c cut) gaussian {
-	r := *g
-	r.mass = g.mass * c.share
-	vd := g.cov[Packed(d, d)]
-	sd := math.Sqrt(vd)
-	shift := float64(sd * c.mean)
-	var gain [MaxK]float64
+// cutting is a Gaussian that is cut along a quantity, with what all pieces share.
+type cutting struct {
+	whole    *gaussian
+	variance float64
+	sigma    float64
+	gain     [MaxK]float64 // regression of the others on the quantity
+}
+
+func (c *cutting) begin(g *gaussian, k, d int) {
+	c.whole = g
+	c.variance = g.cov[Packed(d, d)]
+	c.sigma = math.Sqrt(c.variance)
 	for i := range k {
-		gain[i] = g.at(i, d) / vd
-		r.mean[i] += float64(gain[i] * shift)
+		c.gain[i] = g.at(i, d) / c.variance
 	}
-	less := float64(vd * (1 - c.variance))
+}
+
+// piece writes the whole restricted to a cut into r: mass, mean and covariance of
+// the truncated distribution.
+func (c *cutting) piece(r *gaussian, k int, of cut) {
+	g := c.whole
+	r.mass = g.mass * of.share
+	shift := float64(c.sigma * of.mean)
+	less := float64(c.variance * (1 - of.variance))
+	n := 0
 	for i := range k {
+		r.mean[i] = g.mean[i] + float64(c.gain[i]*shift)
 		for j := 0; j <= i; j++ {
-			r.cov[Packed(i, j)] -= float64(float64(gain[i]*gain[j]) * less)
+			r.cov[n] = g.cov[n] - float64(float64(c.gain[i]*c.gain[j])*less)
+			n++
 		}
 	}
-	return r
 }
 
 // shrink multiplies the standard deviation of quantity d by f and leaves the
@@ -236,6 +149,22 @@ func (c *Gaussians) push(key uint64, k int, g *gaussian) {
 	c.Mass = append(c.Mass, g.mass)
 	c.Mean = append(c.Mean, g.mean[:k]...)
 	c.Cov = append(c.Cov, g.cov[:k*(k+1)/2]...)
+}
+
+// pushFrom appends entry i of other columns.
+func (c *Gaussians) pushFrom(from *Gaussians, i, k int) {
+	p := k * (k + 1) / 2
+	c.Key = append(c.Key, from.Key[i])
+	c.Mass = append(c.Mass, from.Mass[i])
+	c.Mean = append(c.Mean, from.Mean[i*k:i*k+k]...)
+	c.Cov = append(c.Cov, from.Cov[i*p:i*p+p]...)
+}
+
+// store overwrites mean and covariance of entry i.
+func (c *Gaussians) store(g *gaussian, i, k int) {
+	p := k * (k + 1) / 2
+	copy(c.Mean[i*k:i*k+k], g.mean[:k])
+	copy(c.Cov[i*p:i*p+p], g.cov[:p])
 }
 
 // reset empties the columns and keeps their memory.

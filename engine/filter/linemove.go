@@ -18,6 +18,8 @@ func (mv *mover) line(chart, cell int32, g *gaussian) {
 	}
 	first := math.Floor((pos - foldSigmas*sigma) / h)
 	last := math.Floor((pos + foldSigmas*sigma) / h)
+	var whole cutting
+	whole.begin(g, mv.k, 0)
 	left := edge{z: math.Inf(-1)}
 	for j := first; j <= last; j++ {
 		right := edge{z: math.Inf(1)}
@@ -25,10 +27,10 @@ func (mv *mover) line(chart, cell int32, g *gaussian) {
 			right = edgeAt((float64((j+1)*h) - pos) / sigma)
 		}
 		if c := between(left, right); c.share > 0 {
-			piece := g.truncate(mv.k, 0, c)
+			whole.piece(&mv.piece, mv.k, c)
 			// A folded tail may have its mean beyond its cell: it is at home
 			// where its mean is.
-			mv.place(chart, pos+float64(sigma*c.mean), &piece, piece.mass, 0)
+			mv.place(chart, pos+float64(sigma*c.mean), &mv.piece, mv.piece.mass, 0)
 		}
 		left = right
 	}

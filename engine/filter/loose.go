@@ -58,39 +58,35 @@ func (l *Loose) Heaviest() (at geo.Point, headingRad, headingVar float64) {
 // Gaussian, as Predict does; none is cut.
 func (l *Loose) Predict(step Step, w *Workspace) {
 	k, n := len(l.Quantities), len(l.Mass)
-	only := -1
-	f, add := step.F, step.Add
+	mv := &w.mover // its memory
+	add := step.Add
 	if step.Local != nil {
 		l.locate(0, w)
 		w.add, w.f = resize(w.add, 2*n), resize(w.f, 2*n*k)
 		step.Local.Local(w.add, w.f, &w.at, l.Mean, l.Cov)
-		add = append([]float64(nil), step.Add...)
-		f = make([]float64, k*k)
-		for d := range k {
-			f[d*k+d] = 1
-		}
-		copy(f, step.F)
-	} else if f != nil {
-		only = onlyRow(k, f)
+		mv.stepAdd = append(mv.stepAdd[:0], step.Add...)
+		mv.stepF = step.fullF(mv.stepF, k)
+		add = mv.stepAdd
+	} else {
+		mv.f.set(k, step.F)
 	}
 	angular := angularMask(l.Quantities)
-	w.out.reset()
-	var g gaussian
+	g := &mv.g
 	for i := range n {
-		l.load(&g, i, k)
+		l.load(g, i, k)
 		if step.Local != nil {
 			copy(add, w.add[2*i:2*i+2])
-			copy(f, w.f[2*i*k:2*(i+1)*k])
+			copy(mv.stepF, w.f[2*i*k:2*(i+1)*k])
+			mv.f.set(k, mv.stepF)
 		}
-		g.advance(k, f, add, step.Q, only)
+		g.advance(&mv.f, add, step.Q)
 		for q := range k {
 			if angular>>uint(q)&1 != 0 {
 				g.mean[q] = geo.WrapPi(g.mean[q])
 			}
 		}
-		w.out.push(0, k, &g)
+		l.store(g, i, k)
 	}
-	l.Gaussians, w.out = w.out, l.Gaussians
 }
 
 // locate fills w.at with the Gaussians' places, and makes room for columns.
@@ -128,8 +124,8 @@ func (l *Loose) Update(plane PlaneSpace, likelihood any, w *Workspace) (logEvide
 		if logEvidence, err = weigh(l.Mass, w.logs); err != nil {
 			return logEvidence, err
 		}
-		copy(w.out.Mass, l.Mass)
-		l.Gaussians, w.out = w.out, l.Gaussians
+		copy(l.Mean, w.out.Mean)
+		copy(l.Cov, w.out.Cov)
 		return logEvidence, nil
 	case Likelihood:
 		l.locate(m.Wants(), w)

@@ -31,6 +31,9 @@ const mergeAngleRad = 0.25
 // merger sorts Gaussians by cell and merges those of one cell.
 type merger struct {
 	order, spare []int32
+	groups       [maxPerCell]gaussian
+	member       []int8
+	g            gaussian
 }
 
 // merge writes the Gaussians of src into dst (which it empties first), in
@@ -41,8 +44,7 @@ func (m *merger) merge(dst, src *Gaussians, k int, angular uint, most int, trace
 	dst.reset()
 	m.sort(src.Key)
 	n := len(src.Key)
-	var groups [maxPerCell]gaussian
-	member := make([]int8, 0, 16)
+	groups, g := &m.groups, &m.g
 	for a := 0; a < n; {
 		key := src.Key[m.order[a]]
 		b := a + 1
@@ -51,41 +53,68 @@ func (m *merger) merge(dst, src *Gaussians, k int, angular uint, most int, trace
 		}
 		cell := m.order[a:b]
 		a = b
+		if len(cell) == 1 { // most of a narrow belief
+			if trace != nil {
+				trace[cell[0]] = int32(len(dst.Key))
+			}
+			dst.pushFrom(src, int(cell[0]), k)
+			wrap(dst.Mean[len(dst.Mean)-k:], angular)
+			continue
+		}
 		// Heavy ones first, so that they, not crumbs, found the groups.
-		slices.SortStableFunc(cell, func(i, j int32) int { return cmp.Compare(src.Mass[j], src.Mass[i]) })
+		heavyFirst(cell, src.Mass)
 		used := 0
-		member = member[:0]
+		member := m.member[:0]
 		for _, i := range cell {
-			var g gaussian
-			src.load(&g, int(i), k)
-			best := nearest(&groups, used, most, &g, k, angular)
+			src.load(g, int(i), k)
+			best := nearest(groups, used, most, g, angular)
 			if best < 0 {
 				best = used
-				groups[used] = g
+				src.load(&groups[used], int(i), k)
 				used++
 			} else {
-				groups[best].absorb(k, &g, angular)
+				groups[best].absorb(k, g, angular)
 			}
 			member = append(member, int8(best))
 		}
+		m.member = member
 		if trace != nil {
 			for j, i := range cell {
 				trace[i] = int32(len(dst.Key)) + int32(member[j])
 			}
 		}
 		for i := range used {
-			for q := range k {
-				if angular>>uint(q)&1 != 0 {
-					groups[i].mean[q] = geo.WrapPi(groups[i].mean[q])
-				}
-			}
+			wrap(groups[i].mean[:k], angular)
 			dst.push(key, k, &groups[i])
 		}
 	}
 }
 
+// heavyFirst sorts entries by falling mass, equals in the order that they have.
+func heavyFirst(cell []int32, mass []float64) {
+	if len(cell) > 12 {
+		slices.SortStableFunc(cell, func(i, j int32) int { return cmp.Compare(mass[j], mass[i]) })
+		return
+	}
+	for i := 1; i < len(cell); i++ {
+		o := cell[i]
+		j := i
+		for ; j > 0 && mass[cell[j-1]] < mass[o]; j-- {
+			cell[j] = cell[j-1]
+		}
+		cell[j] = o
+	}
+}
+
+func wrap(mean []float64, angular uint) {
+	for ; angular != 0; angular &= angular - 1 {
+		q := bits.TrailingZeros(angular)
+		mean[q] = geo.WrapPi(mean[q])
+	}
+}
+
 // nearest returns the group that g belongs to, or -1 if it founds one.
-func nearest(groups *[maxPerCell]gaussian, used, most int, g *gaussian, k int, angular uint) int {
+func nearest(groups *[maxPerCell]gaussian, used, most int, g *gaussian, angular uint) int {
 	if used == 0 {
 		return -1
 	}
@@ -95,10 +124,9 @@ func nearest(groups *[maxPerCell]gaussian, used, most int, g *gaussian, k int, a
 	best, least := -1, math.Inf(1)
 	for i := range used {
 		d := 0.0
-		for q := range k {
-			if angular>>uint(q)&1 != 0 {
-				d = math.Max(d, math.Abs(geo.WrapPi(g.mean[q]-groups[i].mean[q])))
-			}
+		for left := angular; left != 0; left &= left - 1 {
+			q := bits.TrailingZeros(left)
+			d = math.Max(d, math.Abs(geo.WrapPi(g.mean[q]-groups[i].mean[q])))
 		}
 		if d < least {
 			best, least = i, d
@@ -118,9 +146,10 @@ func (c *Gaussians) load(g *gaussian, i, k int) {
 	copy(g.cov[:], c.Cov[i*p:i*p+p])
 }
 
-// sort sets m.order to the stable ascending order of the keys: insertion for
-// few, else a radix sort over the bits in which the keys differ, linear in
-// their number.
+// sort sets m.order to the stable ascending order of the keys: by insertion
+// where they are few or in order but for a few places, as after a short step;
+// else by a radix sort over the bits in which the keys differ, linear in their
+// number.
 func (m *merger) sort(keys []uint64) {
 	n := len(keys)
 	if cap(m.order) < n {
@@ -131,15 +160,7 @@ func (m *merger) sort(keys []uint64) {
 	for i := range m.order {
 		m.order[i] = int32(i)
 	}
-	if n <= 64 {
-		for i := 1; i < n; i++ {
-			o := m.order[i]
-			j := i
-			for ; j > 0 && keys[m.order[j-1]] > keys[o]; j-- {
-				m.order[j] = m.order[j-1]
-			}
-			m.order[j] = o
-		}
+	if m.insert(keys) {
 		return
 	}
 	var differ uint64
@@ -169,4 +190,23 @@ func (m *merger) sort(keys []uint64) {
 		}
 		m.order, m.spare = m.spare, m.order
 	}
+}
+
+// insert sorts by insertion, and gives up where that takes more than 32 moves
+// an entry; m.order is then in an order in which equals are as they were.
+func (m *merger) insert(keys []uint64) bool {
+	left := 32 * len(keys)
+	for i := 1; i < len(keys); i++ {
+		o := m.order[i]
+		key := keys[o]
+		j := i
+		for ; j > 0 && keys[m.order[j-1]] > key; j-- {
+			m.order[j] = m.order[j-1]
+		}
+		m.order[j] = o
+		if left -= i - j; left < 0 {
+			return false
+		}
+	}
+	return true
 }

@@ -170,7 +170,10 @@ func TestTruncateAgainstIntegration(t *testing.T) {
 			}
 			return edgeAt((x - 0.3) / 1.2)
 		}
-		r := g.truncate(2, 0, between(at(c[0]), at(c[1])))
+		var whole cutting
+		whole.begin(&g, 2, 0)
+		var r gaussian
+		whole.piece(&r, 2, between(at(c[0]), at(c[1])))
 		// Given x, y is N(m + b(x - mx), v - bc): integrate over x alone,
 		// midpoint rule: error (b-a)·f″·dx²/24 < 1e-9.
 		lo, hi := math.Max(c[0], -12), math.Min(c[1], 12)

@@ -16,8 +16,9 @@ type Workspace struct {
 	at     Columns
 	out    Gaussians
 	merger merger
+	mover  mover
 	trace  *Trace
-	source []int32
+	source []int32 // of what is traced
 	into   []int32
 	// What has gone over ends, where that is kept (Depart).
 	departs  bool
@@ -101,12 +102,9 @@ func Predict(b *Belief, space Space, step Step, w *Workspace) {
 // move is Predict for Gaussians.
 func (b *Belief) move(space Space, step Step, w *Workspace) {
 	k := len(b.Quantities)
-	mv := mover{k: k, dim: b.Dim, step: step, out: &w.out, angular: angularMask(b.Quantities)}
+	mv := w.newMover(b, step)
 	if b.Dim == 1 {
 		mv.lines = space.(LineSpace).Lines(b.Level)
-		if w.departs {
-			mv.departed = &w.departed
-		}
 	} else {
 		mv.lattice = b.Lattice
 		var most float64
@@ -119,14 +117,8 @@ func (b *Belief) move(space Space, step Step, w *Workspace) {
 		w.add = resize(w.add, n*b.Dim)
 		w.f = resize(w.f, n*b.Dim*k)
 		step.Local.Local(w.add, w.f, &w.at, b.Mean, b.Cov)
-		mv.stepAdd = append([]float64(nil), step.Add...)
-		mv.stepF = make([]float64, k*k)
-		for d := range k {
-			mv.stepF[d*k+d] = 1
-		}
-		if step.F != nil {
-			copy(mv.stepF, step.F)
-		}
+		mv.stepAdd = append(mv.stepAdd[:0], step.Add...)
+		mv.stepF = step.fullF(mv.stepF, k)
 	}
 	if b.Dim == 2 {
 		// What the noise alone would be cut into, without trying.
@@ -172,30 +164,31 @@ func (mv *mover) send(b *Belief, w *Workspace) bool {
 	mv.out.reset()
 	w.source = w.source[:0]
 	mv.pruned, mv.left, mv.cuts = 0, 0, 0
-	only := -1
-	if step.Local == nil && step.F != nil {
-		only = onlyRow(k, step.F)
+	add := step.Add
+	if step.Local != nil {
+		add = mv.stepAdd
+	} else {
+		mv.f.set(k, step.F)
 	}
-	var g gaussian
+	g := &mv.g
 	for i := range b.Key {
-		b.load(&g, i, k)
-		f, add := step.F, step.Add
+		b.load(g, i, k)
 		if step.Local != nil {
 			copy(mv.stepAdd, w.add[i*b.Dim:(i+1)*b.Dim])
 			copy(mv.stepF, w.f[i*b.Dim*k:(i+1)*b.Dim*k])
-			f, add = mv.stepF, mv.stepAdd
+			mv.f.set(k, mv.stepF)
 		}
-		g.advance(k, f, add, step.Q, only)
+		g.advance(&mv.f, add, step.Q)
 		if b.Dim == 1 {
 			chart, cell := LineCell(b.Key[i])
-			mv.line(chart, cell, &g)
+			mv.line(chart, cell, g)
 		} else {
-			mv.plane(b.Lattice, b.Key[i], &g, w.tiles.density[i] < mv.faint)
+			mv.plane(b.Lattice, b.Key[i], g, w.tiles.density[i] < mv.faint)
 			if mv.cuts > maxPieces {
 				return false
 			}
 		}
-		for len(w.source) < len(mv.out.Key) {
+		for w.trace != nil && len(w.source) < len(mv.out.Key) {
 			w.source = append(w.source, int32(i))
 		}
 	}
@@ -223,6 +216,8 @@ type mover struct {
 	step         Step
 	stepAdd      []float64
 	stepF        []float64
+	f            transition
+	g, piece     gaussian
 	angular      uint
 	lines        *Lines
 	lattice      Lattice
@@ -232,6 +227,19 @@ type mover struct {
 	departed     *Gaussians      // nil: what leaves the map is counted alone
 	taps         [MaxK][]float64 // of each quantity, since cuts nest
 	pruned, left float64
+}
+
+// newMover makes the workspace's mover ready for a belief, keeping what memory
+// there is.
+func (w *Workspace) newMover(b *Belief, step Step) *mover {
+	mv := &w.mover
+	mv.k, mv.dim, mv.step, mv.out, mv.angular = len(b.Quantities), b.Dim, step, &w.out, angularMask(b.Quantities)
+	mv.lines, mv.departed = nil, nil
+	mv.lattice, mv.faint, mv.cuts, mv.pruned, mv.left = Lattice{}, 0, 0, 0, 0
+	if w.departs && b.Dim == 1 {
+		mv.departed = &w.departed
+	}
+	return mv
 }
 
 // locate fills w.at with the columns at the Gaussians' positions.

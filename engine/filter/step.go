@@ -87,3 +87,16 @@ func (s *Step) SetF(i, j int, v float64) {
 	}
 	s.F[i*k+j] = v
 }
+
+// fullF writes F as a whole matrix into dst.
+func (s *Step) fullF(dst []float64, k int) []float64 {
+	dst = append(resize(dst, k*k)[:0], s.F...)
+	if s.F == nil {
+		dst = dst[:k*k]
+		clear(dst)
+		for d := range k {
+			dst[d*k+d] = 1
+		}
+	}
+	return dst
+}

@@ -9,13 +9,6 @@ const (
 	ln2Lo = 1.90821492927058770002e-10
 )
 
-// expTaylor are 1/n! for n = 13 … 2. On |r| ≤ ln2/2 the first term left out
-// is r^14/14! < 5e-18 of the result.
-var expTaylor = [...]float64{
-	1.0 / 6227020800, 1.0 / 479001600, 1.0 / 39916800, 1.0 / 3628800, 1.0 / 362880, 1.0 / 40320,
-	1.0 / 5040, 1.0 / 720, 1.0 / 120, 1.0 / 24, 1.0 / 6, 1.0 / 2,
-}
-
 // Exp returns e**x to 2 ulp. Exp(-Inf) = 0, Exp(+Inf) = +Inf, Exp(NaN) = NaN;
 // below about -745.13 it returns 0, above 709.78 +Inf.
 //
@@ -33,10 +26,19 @@ func Exp(x float64) float64 {
 	}
 	k := math.Floor(float64(x*(1/math.Ln2)) + 0.5)
 	r := (x - float64(k*ln2Hi)) - float64(k*ln2Lo)
-	p := expTaylor[0]
-	for _, c := range expTaylor[1:] {
-		p = float64(p*r) + c
-	}
+	// 1/n! for n = 13 … 2. On |r| ≤ ln2/2 the first term left out is
+	// r^14/14! < 5e-18 of the result.
+	p := float64(1.0/6227020800*r) + 1.0/479001600
+	p = float64(p*r) + 1.0/39916800
+	p = float64(p*r) + 1.0/3628800
+	p = float64(p*r) + 1.0/362880
+	p = float64(p*r) + 1.0/40320
+	p = float64(p*r) + 1.0/5040
+	p = float64(p*r) + 1.0/720
+	p = float64(p*r) + 1.0/120
+	p = float64(p*r) + 1.0/24
+	p = float64(p*r) + 1.0/6
+	p = float64(p*r) + 1.0/2
 	y := 1 + (r + float64(r*float64(r*p)))
 	return scale(y, int(k))
 }
@@ -67,7 +69,7 @@ func Log(x float64) float64 {
 	case x > math.MaxFloat64:
 		return x
 	}
-	m, e := math.Frexp(x)
+	m, e := frexp(x)
 	if m < math.Sqrt2/2 {
 		m *= 2
 		e--
@@ -75,14 +77,29 @@ func Log(x float64) float64 {
 	f := m - 1
 	s := f / (2 + f)
 	z := s * s
-	p := 1.0 / 23
-	for n := 21; n >= 3; n -= 2 {
-		p = float64(p*z) + 1/float64(n)
-	}
+	p := float64(1.0/23*z) + 1.0/21
+	p = float64(p*z) + 1.0/19
+	p = float64(p*z) + 1.0/17
+	p = float64(p*z) + 1.0/15
+	p = float64(p*z) + 1.0/13
+	p = float64(p*z) + 1.0/11
+	p = float64(p*z) + 1.0/9
+	p = float64(p*z) + 1.0/7
+	p = float64(p*z) + 1.0/5
+	p = float64(p*z) + 1.0/3
 	// log m = f - s·(f - 2·z·p): keeps the leading term exact (f is exact).
 	k := float64(e)
 	tail := float64(s * (f - float64(2*float64(z*p))))
 	return float64(k*ln2Hi) - ((tail - float64(k*ln2Lo)) - f)
+}
+
+// frexp is math.Frexp of a finite x > 0, in line where x is no denormal.
+func frexp(x float64) (m float64, e int) {
+	b := math.Float64bits(x)
+	if b < 1<<52 {
+		return math.Frexp(x)
+	}
+	return math.Float64frombits(b&(1<<52-1) | 1022<<52), int(b>>52) - 1022
 }
 
 // Log1p returns log(1+x), accurate also for small x; NaN below -1.
