@@ -71,7 +71,7 @@ var mayImport = map[string][]string{
 	"fixtures/outside/fetch": {"fixtures/outside"},
 	"fixtures/credibility": {
 		"engine/filter", "engine/filter/filtertest", "engine/geo", "engine/plane", "engine/sensor", "engine/session", "engine/summary",
-		"engine/study/score", "network", "network/roadfile", "terrain", "terrain/heightfile", "fixtures/accept", "fixtures/outside", "fixtures/reference", "fixtures/roads",
+		"engine/study/score", "network", "network/roadfile", "terrain", "terrain/heightfile", "fixtures/accept", "fixtures/drives", "fixtures/outside", "fixtures/reference", "fixtures/roads", "fixtures/sim",
 	},
 	"fixtures/credibility/run": {"fixtures/credibility"},
 	"tools/...":                {},
