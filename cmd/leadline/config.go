@@ -29,12 +29,12 @@ const (
 )
 
 // settable makes flags of a command settings. The key of one is its name with
-// _ for -, unless it is given as FLAG=KEY.
+// _ for -, unless it is given as FLAG=KEY. It may be called several times.
 func settable(c *cobra.Command, flags ...string) {
 	if c.Annotations == nil {
 		c.Annotations = map[string]string{}
 	}
-	c.Annotations[optionsOf] = strings.Join(flags, " ")
+	c.Annotations[optionsOf] = strings.TrimSpace(c.Annotations[optionsOf] + " " + strings.Join(flags, " "))
 }
 
 // takeSettings makes all commands under a root take their settings.

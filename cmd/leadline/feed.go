@@ -27,7 +27,7 @@ import (
 
 type feedOptions struct {
 	headerOptions
-	to           string
+	reach
 	speed        float64
 	replace      bool
 	asJSON       bool
@@ -61,7 +61,7 @@ heard is sent, and the drive is ended. A second signal stops at once.`,
 		},
 	}
 	f := c.Flags()
-	f.StringVar(&o.to, "to", defaultAddress, "address of the server")
+	o.reach.flags(c, "to")
 	f.StringVar(&o.mapName, "map", "", "name of the map at the server, in place of the one in the drive's header")
 	f.StringVar(&o.suite, "suite", "", "name of the suite at the server, in place of the one in the drive's header")
 	f.Float64Var(&o.speed, "speed", 0, "send at this many times real time; 0 is as fast as possible")
@@ -70,7 +70,6 @@ heard is sent, and the drive is ended. A second signal stops at once.`,
 	f.BoolVar(&o.allowRefused, "allow-refused", false, "exit with status 0 although measurements were refused")
 	o.headerOptions.flags(c)
 	o.liveOptions.flags(c)
-	settable(c, "to=server")
 	return c
 }
 
@@ -93,7 +92,7 @@ func feed(c *cobra.Command, o *feedOptions, path string) error {
 	if flag := onlyOf(c, liveFlags); flag != "" {
 		return fmt.Errorf("--%s is for instruments: %s is a recorded drive, whose header says it", flag, path)
 	}
-	if err := checkAddress("--to", o.to); err != nil {
+	if err := checkAddress("--to", o.address); err != nil {
 		return err
 	}
 	d, err := readDrive(path)
@@ -136,7 +135,7 @@ func (o *feedOptions) conclude(c *cobra.Command, path, name string, closed *lead
 
 // send carries a drive to the server, in the order of events.
 func (o *feedOptions) send(errs io.Writer, d *drivefile.Drive, name string) (*leadlinev1.Closed, error, error) {
-	conn, err := client.Dial(o.to)
+	conn, err := o.dial()
 	if err != nil {
 		return nil, nil, err
 	}
@@ -188,7 +187,7 @@ func due(first, at sensor.Time, speed float64) time.Duration {
 
 // failed words why a feed ended before its drive did.
 func (o *feedOptions) failed(err error) error {
-	worded := serverError(err, o.to)
+	worded := serverError(err, o.address)
 	switch {
 	case endedElsewhere(err):
 		return failure{worded} // the feed was good, and what came of it is not

@@ -59,7 +59,7 @@ func (o *feedOptions) live(c *cobra.Command, from string) error {
 	if flag := onlyOf(c, recordedFlags); flag != "" {
 		return fmt.Errorf("--%s is for recorded drives: %s speaks as it does", flag, from)
 	}
-	if err := checkAddress("--to", o.to); err != nil {
+	if err := checkAddress("--to", o.address); err != nil {
 		return err
 	}
 	source, err := livelog.Parse(from)
@@ -77,7 +77,7 @@ func (o *feedOptions) live(c *cobra.Command, from string) error {
 	if sentences.Time.From == "" {
 		sentences.Time.From = logfile.FromArrival
 	}
-	conn, err := client.Dial(o.to)
+	conn, err := o.dial()
 	if err != nil {
 		return err
 	}
@@ -97,13 +97,13 @@ func (o *feedOptions) live(c *cobra.Command, from string) error {
 		OnRefusal: func(r *leadlinev1.Refusal) { first.CompareAndSwap(nil, r) },
 	})
 	if err != nil {
-		return fmt.Errorf("%s: %w", from, serverError(err, o.to))
+		return fmt.Errorf("%s: %w", from, serverError(err, o.address))
 	}
 	o.resumed(errs, f)
 	if a := stream.Addr(); a != nil {
 		fmt.Fprintf(errs, "listening on %s\n", a)
 	}
-	fmt.Fprintf(errs, "feeding %s to %s\n", source, o.to)
+	fmt.Fprintf(errs, "feeding %s to %s\n", source, o.address)
 	n := logfile.NewNMEA(source.String(), sentences, func(r logfile.Record) error {
 		if r.Event == nil {
 			return nil // a truth: there is nobody to compare with it
@@ -139,7 +139,7 @@ func (o *feedOptions) broken(err error, drive string) error {
 	if endedElsewhere(err) {
 		return o.failed(err)
 	}
-	return sentences(serverError(err, o.to), fmt.Sprintf("The drive was not ended: go on with --drive %s, if the server still has it", drive))
+	return sentences(serverError(err, o.address), fmt.Sprintf("The drive was not ended: go on with --drive %s, if the server still has it", drive))
 }
 
 // resumed says what became of a drive that was to go on: a server that was

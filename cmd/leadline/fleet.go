@@ -8,57 +8,28 @@ import (
 	"time"
 
 	"github.com/spf13/cobra"
-	"google.golang.org/grpc"
 
-	"leadline/engine/client"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
 // patient is how long commands wait for a server's answer.
 const patient = 10 * time.Second
 
-// dial prepares a connection to the server that a flag names.
-func dial(flag, address string) (*grpc.ClientConn, error) {
-	if err := checkAddress(flag, address); err != nil {
-		return nil, err
-	}
-	conn, err := client.Dial(address)
-	if err != nil {
-		return nil, fmt.Errorf("%s %s: %w", flag, address, err)
-	}
-	return conn, nil
-}
-
-// asking calls a server once or a few times, and words what goes wrong.
-func asking(address string, ask func(context.Context, leadlinev1.PositionServiceClient) error) error {
-	conn, err := dial("--at", address)
-	if err != nil {
-		return err
-	}
-	defer conn.Close()
-	ctx, cancel := context.WithTimeout(context.Background(), patient)
-	defer cancel()
-	if err := ask(ctx, leadlinev1.NewPositionServiceClient(conn)); err != nil {
-		return serverError(err, address)
-	}
-	return nil
-}
-
 func vehiclesCommand() *cobra.Command {
-	var at, onMap string
+	var to reach
+	var onMap string
 	var asJSON bool
 	c := &cobra.Command{
 		Use:   "vehicles --at ADDR",
 		Short: "List the vehicles of a server",
 		Args:  cobra.NoArgs,
 		RunE: func(c *cobra.Command, _ []string) error {
-			return asking(at, func(ctx context.Context, s leadlinev1.PositionServiceClient) error {
+			return asking(&to, func(ctx context.Context, s leadlinev1.PositionServiceClient) error {
 				return listVehicles(ctx, c.OutOrStdout(), s, onMap, asJSON)
 			})
 		},
 	}
-	c.Flags().StringVar(&at, "at", defaultAddress, "address of the server")
-	settable(c, "at=server")
+	to.flags(c, "at")
 	c.Flags().StringVar(&onMap, "map", "", "only those on this map")
 	c.Flags().BoolVar(&asJSON, "json", false, "print each vehicle as JSON, one object a line")
 	return c
@@ -119,7 +90,8 @@ func newer(v *leadlinev1.Vehicle) string {
 }
 
 func endCommand() *cobra.Command {
-	var at, drive string
+	var to reach
+	var drive string
 	var asJSON bool
 	c := &cobra.Command{
 		Use:   "end VEHICLE --at ADDR",
@@ -129,7 +101,7 @@ back for late measurements is filtered, and whoever feeds it is sent away. The
 vehicle can still be asked for.`,
 		Args: cobra.ExactArgs(1),
 		RunE: func(c *cobra.Command, args []string) error {
-			return asking(at, func(ctx context.Context, s leadlinev1.PositionServiceClient) error {
+			return asking(&to, func(ctx context.Context, s leadlinev1.PositionServiceClient) error {
 				r, err := s.EndDrive(ctx, &leadlinev1.EndDriveRequest{Vehicle: args[0], Drive: drive})
 				if err != nil {
 					return err
@@ -142,8 +114,7 @@ vehicle can still be asked for.`,
 			})
 		},
 	}
-	c.Flags().StringVar(&at, "at", defaultAddress, "address of the server")
-	settable(c, "at=server")
+	to.flags(c, "at")
 	c.Flags().StringVar(&drive, "drive", "", "the drive's name; another one is left alone")
 	c.Flags().BoolVar(&asJSON, "json", false, "print the server's last word as JSON")
 	return c

@@ -22,12 +22,13 @@ import (
 )
 
 type followOptions struct {
-	at, area, detail string
-	asJSON, changes  bool
-	interval         time.Duration
-	inside           float64
-	regions          []float64
-	count            int
+	reach
+	area, detail    string
+	asJSON, changes bool
+	interval        time.Duration
+	inside          float64
+	regions         []float64
+	count           int
 }
 
 // details are the words of --detail.
@@ -49,8 +50,7 @@ how many. A connection that breaks is taken up again where it was.`,
 		RunE: func(c *cobra.Command, args []string) error { return follow(c, &o, args) },
 	}
 	f := c.Flags()
-	f.StringVar(&o.at, "at", defaultAddress, "address of the server")
-	settable(c, "at=server")
+	o.reach.flags(c, "at")
 	f.BoolVar(&o.asJSON, "json", false, "print each update as JSON, one object a line")
 	f.DurationVar(&o.interval, "interval", 0, "at least this long between two lines of a vehicle; a change of status comes at once")
 	f.BoolVar(&o.changes, "changes", false, "only changes of status")
@@ -107,7 +107,7 @@ func follow(c *cobra.Command, o *followOptions, vehicles []string) error {
 	if err != nil {
 		return err
 	}
-	conn, err := dial("--at", o.at)
+	conn, err := o.dial()
 	if err != nil {
 		return err
 	}
@@ -115,7 +115,7 @@ func follow(c *cobra.Command, o *followOptions, vehicles []string) error {
 	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
 	defer stop()
 	w, n := c.OutOrStdout(), 0
-	silence := &silence{errs: c.ErrOrStderr(), at: o.at, now: time.Now}
+	silence := &silence{errs: c.ErrOrStderr(), at: o.address, now: time.Now}
 	err = client.Follow(ctx, conn, client.Following{
 		Request: req,
 		OnUpdate: func(m *leadlinev1.FollowResponse) error {
@@ -133,7 +133,7 @@ func follow(c *cobra.Command, o *followOptions, vehicles []string) error {
 	if errors.Is(err, errEnough) || ctx.Err() != nil {
 		return nil
 	}
-	return serverError(err, o.at)
+	return serverError(err, o.address)
 }
 
 // print prints an update.

@@ -19,14 +19,14 @@ import (
 )
 
 func mapListCommand() *cobra.Command {
-	var at string
+	var to reach
 	var asJSON bool
 	c := &cobra.Command{
 		Use:   "list [NAME] --at ADDR",
 		Short: "List the maps of a server, or say what one of them is",
 		Args:  cobra.MaximumNArgs(1),
 		RunE: func(c *cobra.Command, args []string) error {
-			return asking(at, func(ctx context.Context, s leadlinev1.PositionServiceClient) error {
+			return asking(&to, func(ctx context.Context, s leadlinev1.PositionServiceClient) error {
 				w := c.OutOrStdout()
 				if len(args) == 1 {
 					r, err := s.DescribeMap(ctx, &leadlinev1.DescribeMapRequest{Map: args[0]})
@@ -53,8 +53,7 @@ func mapListCommand() *cobra.Command {
 			})
 		},
 	}
-	c.Flags().StringVar(&at, "at", defaultAddress, "address of the server")
-	settable(c, "at=server")
+	to.flags(c, "at")
 	c.Flags().BoolVar(&asJSON, "json", false, "print the answer as JSON")
 	return c
 }
@@ -96,7 +95,8 @@ func printMap(w io.Writer, m *leadlinev1.MapDescription) {
 }
 
 func mapSendCommand() *cobra.Command {
-	var at, name string
+	var to reach
+	var name string
 	var replace bool
 	c := &cobra.Command{
 		Use:   "send MAP --at ADDR",
@@ -104,16 +104,15 @@ func mapSendCommand() *cobra.Command {
 		Long: `Send uploads a compiled map to a server that was started with --uploads. New
 drives can use it at once; those that are open keep the one they have.`,
 		Args: cobra.ExactArgs(1),
-		RunE: func(c *cobra.Command, args []string) error { return sendMap(c, at, args[0], name, replace) },
+		RunE: func(c *cobra.Command, args []string) error { return sendMap(c, &to, args[0], name, replace) },
 	}
-	c.Flags().StringVar(&at, "at", defaultAddress, "address of the server")
-	settable(c, "at=server")
+	to.flags(c, "at")
 	c.Flags().StringVar(&name, "name", "", "name of the map at the server (default: the file's)")
 	c.Flags().BoolVar(&replace, "replace", false, "take the place of the map that has the name")
 	return c
 }
 
-func sendMap(c *cobra.Command, at, path, name string, replace bool) error {
+func sendMap(c *cobra.Command, to *reach, path, name string, replace bool) error {
 	m, err := openMap(path) // what is damaged need not be sent
 	if err != nil {
 		return err
@@ -131,7 +130,7 @@ func sendMap(c *cobra.Command, at, path, name string, replace bool) error {
 		return err
 	}
 	defer file.Close()
-	conn, err := dial("--at", at)
+	conn, err := to.dial()
 	if err != nil {
 		return err
 	}
@@ -150,7 +149,7 @@ func sendMap(c *cobra.Command, at, path, name string, replace bool) error {
 	})
 	end()
 	if err != nil {
-		return fmt.Errorf("%s: %w", path, serverError(err, at))
+		return fmt.Errorf("%s: %w", path, serverError(err, to.address))
 	}
 	fmt.Fprintf(c.OutOrStdout(), "%s is %s\n", b.Name, done)
 	printMap(c.OutOrStdout(), sent)

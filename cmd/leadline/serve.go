@@ -3,7 +3,6 @@ package main
 import (
 	"errors"
 	"fmt"
-	"net"
 	"os"
 	"strings"
 	"time"
@@ -24,11 +23,11 @@ const (
 )
 
 type serveOptions struct {
-	maps, suites        []string
-	origins             []string
-	uploads             string
-	listen              string
-	plainBeyondLoopback bool
+	maps, suites []string
+	origins      []string
+	uploads      string
+	listen       string
+	accessOptions
 	maxCells, vehicles  int
 	drainTimeout        time.Duration
 	logFormat, logLevel choice
@@ -58,7 +57,7 @@ Nothing is durable yet: a server that stops forgets its vehicles.`,
 	f.StringArrayVar(&o.suites, "suite", nil, "suite as NAME=FILE, or FILE alone; repeat for several; the starter suites are always there")
 	f.StringVar(&o.uploads, "uploads", "", "folder that keeps maps which clients send; none are taken without it")
 	f.StringVar(&o.listen, "listen", defaultAddress, "address to listen on; port 0 takes a free one")
-	f.BoolVar(&o.plainBeyondLoopback, "plain-text-beyond-loopback", false, "listen without encryption or login on an address that other machines reach")
+	o.accessOptions.flags(c)
 	f.StringArrayVar(&o.origins, "origin", nil, "origin whose pages may call from a browser, such as https://map.example; repeat for several")
 	f.IntVar(&o.vehicles, "max-vehicles", defaultVehicles, "greatest number of vehicles at once")
 	f.IntVar(&o.maxCells, "max-cells", defaultCells, "greatest number of cells of a belief")
@@ -66,7 +65,7 @@ Nothing is durable yet: a server that stops forgets its vehicles.`,
 	f.Var(&o.logFormat, "log-format", "form of the log: text or json")
 	f.Var(&o.logLevel, "log-level", "least level of what is logged: debug, info, warn or error")
 	f.BoolVar(&o.printConfig, "print-config", false, "print the settings that count and where each came from, and end")
-	settable(c, "map", "suite", "uploads", "listen", "plain-text-beyond-loopback", "origin", "max-vehicles", "max-cells", "drain-timeout", "log-format", "log-level")
+	settable(c, "map", "suite", "uploads", "listen", "origin", "max-vehicles", "max-cells", "drain-timeout", "log-format", "log-level")
 	return c
 }
 
@@ -90,7 +89,7 @@ func serve(c *cobra.Command, o *serveOptions) error {
 	if len(o.maps) == 0 && o.uploads == "" {
 		return errors.New("no map to serve: give --map NAME=FILE, LEADLINE_MAP, or map in the file of settings; see `leadline serve --help`")
 	}
-	if err := o.checkBounds(); err != nil {
+	if err := errors.Join(o.checkBounds(), o.check()); err != nil {
 		return err
 	}
 	log := logger(c.ErrOrStderr(), o.logFormat.word, o.logLevel.word)
@@ -154,19 +153,4 @@ func named(arg string, own func(string) string) (name, path string) {
 		return name, path
 	}
 	return own(arg), arg
-}
-
-// loopback refuses an address that other machines can reach.
-func loopback(address string) error {
-	host, _, err := net.SplitHostPort(address)
-	if err != nil {
-		return fmt.Errorf("--listen %s is no address: give HOST:PORT, such as %s", address, defaultAddress)
-	}
-	if host == "localhost" {
-		return nil
-	}
-	if ip := net.ParseIP(host); ip == nil || !ip.IsLoopback() {
-		return fmt.Errorf("--listen %s can be reached from other machines, and traffic is neither encrypted nor authenticated: listen on 127.0.0.1, or say --plain-text-beyond-loopback", address)
-	}
-	return nil
 }

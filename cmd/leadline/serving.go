@@ -26,12 +26,13 @@ type serving struct {
 
 // start opens maps and suites and serves them.
 func (o *serveOptions) start(log *slog.Logger) (*serving, error) {
-	if !o.plainBeyondLoopback {
-		if err := loopback(o.listen); err != nil {
-			return nil, err
-		}
+	if err := o.mayListen(o.listen); err != nil {
+		return nil, err
 	}
 	cfg, closeMaps, err := o.config()
+	if err == nil {
+		err = o.apply(cfg, log)
+	}
 	if err != nil {
 		closeMaps()
 		return nil, err

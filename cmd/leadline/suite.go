@@ -18,7 +18,7 @@ import (
 )
 
 func suiteCommand() *cobra.Command {
-	var at string
+	var to reach
 	var heights bool
 	c := &cobra.Command{
 		Use:   "suite [NAME]",
@@ -27,8 +27,8 @@ func suiteCommand() *cobra.Command {
 of a server, which are written with their defaults filled in.`,
 		Args: cobra.MaximumNArgs(1),
 		RunE: func(c *cobra.Command, args []string) error {
-			if at != "" {
-				return asking(at, func(ctx context.Context, s leadlinev1.PositionServiceClient) error {
+			if to.address != "" {
+				return asking(&to, func(ctx context.Context, s leadlinev1.PositionServiceClient) error {
 					return serverSuite(ctx, c.OutOrStdout(), s, args, heights)
 				})
 			}
@@ -47,7 +47,8 @@ of a server, which are written with their defaults filled in.`,
 			return err
 		},
 	}
-	c.Flags().StringVar(&at, "at", "", "address of a server whose suites are wanted")
+	to.addressFlag(c, "at", "", "address of a server whose suites are wanted")
+	settable(c, "tls", "ca", "cert", "key", "token-file")
 	c.Flags().BoolVar(&heights, "heights", false, "with the defaults for height maps; those for roads otherwise")
 	return c
 }

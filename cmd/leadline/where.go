@@ -10,17 +10,17 @@ import (
 	"github.com/spf13/cobra"
 	"google.golang.org/protobuf/proto"
 
-	"leadline/engine/client"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
 type whereOptions struct {
-	at, area string
-	asJSON   bool
-	now      bool
-	regions  []float64
-	risk     float64
-	timeout  time.Duration
+	reach
+	area    string
+	asJSON  bool
+	now     bool
+	regions []float64
+	risk    float64
+	timeout time.Duration
 }
 
 func whereCommand() *cobra.Command {
@@ -32,14 +32,13 @@ func whereCommand() *cobra.Command {
 		RunE:  func(c *cobra.Command, args []string) error { return where(c, &o, args) },
 	}
 	f := c.Flags()
-	f.StringVar(&o.at, "at", defaultAddress, "address of the server")
+	o.reach.flags(c, "at")
 	f.BoolVar(&o.asJSON, "json", false, "print each answer as JSON, regions as polygons")
 	f.BoolVar(&o.now, "now", false, "carry the belief on to the present, instead of the last measurement")
 	f.Float64SliceVar(&o.regions, "region", nil, "percentage whose smallest region is wanted, such as 95; repeat for several")
 	f.Float64Var(&o.risk, "risk", 0, "integrity risk of the protection radius (default: the suite's)")
 	f.StringVar(&o.area, "area", "", "GeoJSON file with one polygon whose probability is wanted")
 	f.DurationVar(&o.timeout, "timeout", 10*time.Second, "how long to wait for an answer")
-	settable(c, "at=server")
 	return c
 }
 
@@ -71,19 +70,16 @@ func where(c *cobra.Command, o *whereOptions, vehicles []string) error {
 			return err
 		}
 	}
-	if err := checkAddress("--at", o.at); err != nil {
-		return err
-	}
-	conn, err := client.Dial(o.at)
+	conn, err := o.dial()
 	if err != nil {
-		return fmt.Errorf("--at %s: %w", o.at, err)
+		return err
 	}
 	defer conn.Close()
 	ctx, cancel := context.WithTimeout(context.Background(), o.timeout)
 	defer cancel()
 	resp, err := leadlinev1.NewPositionServiceClient(conn).Where(ctx, req)
 	if err != nil {
-		return serverError(err, o.at)
+		return serverError(err, o.address)
 	}
 	var failed error
 	missing := 0

@@ -20,7 +20,6 @@ import (
 	"google.golang.org/genproto/googleapis/rpc/errdetails"
 	"google.golang.org/grpc"
 	"google.golang.org/grpc/codes"
-	"google.golang.org/grpc/credentials/insecure"
 	"google.golang.org/grpc/keepalive"
 	"google.golang.org/grpc/status"
 	"google.golang.org/protobuf/proto"
@@ -40,12 +39,15 @@ const maxMessage = 16 << 20
 
 // Dial prepares a connection to host:port, in the clear. Nothing is sent
 // before the first call, so an address where nobody listens is an error there.
-func Dial(target string) (*grpc.ClientConn, error) {
-	return grpc.NewClient(target,
-		grpc.WithTransportCredentials(insecure.NewCredentials()),
+// DialSecure encrypts, and says who calls.
+func Dial(target string) (*grpc.ClientConn, error) { return DialSecure(target, Security{}) }
+
+// dialOptions are those of every connection.
+func dialOptions() []grpc.DialOption {
+	return []grpc.DialOption{
 		grpc.WithDefaultCallOptions(grpc.MaxCallRecvMsgSize(maxMessage)),
 		grpc.WithKeepaliveParams(keepalive.ClientParameters{Time: 30 * time.Second, Timeout: 10 * time.Second}),
-	)
+	}
 }
 
 // Drive says what a feed carries, and how.

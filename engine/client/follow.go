@@ -40,6 +40,7 @@ func Follow(ctx context.Context, conn grpc.ClientConnInterface, f Following) err
 	req := proto.CloneOf(f.Request)
 	pause, begun := firstPause, false
 	for {
+		opened := time.Now()
 		err := followOnce(ctx, conn, req, func(m *leadlinev1.FollowResponse) error {
 			pause, begun = firstPause, true
 			req.ResumeToken = m.GetResumeToken()
@@ -58,6 +59,8 @@ func Follow(ctx context.Context, conn grpc.ClientConnInterface, f Following) err
 				f.OnBreak(err, true)
 			}
 			continue
+		case why.Reason == leadlinev1.Reason_REASON_IDENTITY_EXPIRED && time.Since(opened) > time.Second:
+			// The token was good when the stream began: there may be another.
 		case !begun || status.Code(err) != codes.Unavailable:
 			return err
 		}

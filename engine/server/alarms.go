@@ -114,11 +114,12 @@ func (b *alarmBook) clear(number uint64, reason string) {
 }
 
 // SeeAlarm notes who has seen an alarm: see the .proto file.
-func (s *Server) SeeAlarm(_ context.Context, req *leadlinev1.SeeAlarmRequest) (*leadlinev1.SeeAlarmResponse, error) {
-	if req.GetWho() == "" {
+func (s *Server) SeeAlarm(ctx context.Context, req *leadlinev1.SeeAlarmRequest) (*leadlinev1.SeeAlarmResponse, error) {
+	who := by(ctx, req.GetWho())
+	if who == "" {
 		return nil, badField("who", "who is missing: say who has seen the alarm")
 	}
-	if err := wire.Name("who", req.GetWho()); err != nil {
+	if err := wire.Name("who", who); err != nil {
 		return nil, badField("who", "%v", err)
 	}
 	if err := wire.Name("note", req.GetNote()); err != nil {
@@ -133,7 +134,7 @@ func (s *Server) SeeAlarm(_ context.Context, req *leadlinev1.SeeAlarmRequest) (*
 	}
 	if a.GetSeenAt() == nil {
 		a = proto.CloneOf(a)
-		a.SeenAt, a.SeenBy, a.Note = timestamppb.New(b.now()), req.GetWho(), req.GetNote()
+		a.SeenAt, a.SeenBy, a.Note = timestamppb.New(b.now()), who, req.GetNote()
 		b.put(a)
 	}
 	return &leadlinev1.SeeAlarmResponse{Alarm: a}, nil

@@ -1,6 +1,7 @@
 package server
 
 import (
+	"crypto/tls"
 	"errors"
 	"fmt"
 	"log/slog"
@@ -28,6 +29,10 @@ type Config struct {
 	Limits   Limits
 	// Uploads, if set, lets clients add maps.
 	Uploads *Uploads
+	// Access, if set, is who may do what; nil is that everybody may do all.
+	Access *Access
+	// Encryption, if set, encrypts every connection.
+	Encryption *tls.Config
 	// Origins are those whose pages may call the API from a browser, beside
 	// pages of this server: scheme, host and port.
 	Origins []string

@@ -15,19 +15,19 @@ const versionHeader = "leadline-version"
 func (s *Server) header() metadata.MD { return metadata.Pairs(versionHeader, s.cfg.Version) }
 
 // aroundUnary and aroundStream run around every call.
-func (s *Server) aroundUnary(ctx context.Context, req any, _ *grpc.UnaryServerInfo, handle grpc.UnaryHandler) (any, error) {
+func (s *Server) aroundUnary(ctx context.Context, req any, info *grpc.UnaryServerInfo, handle grpc.UnaryHandler) (any, error) {
 	if err := grpc.SetHeader(ctx, s.header()); err != nil {
 		return nil, err
 	}
-	return handle(ctx, req)
+	return s.guardUnary(ctx, req, info.FullMethod, handle)
 }
 
-func (s *Server) aroundStream(srv any, stream grpc.ServerStream, _ *grpc.StreamServerInfo, handle grpc.StreamHandler) error {
+func (s *Server) aroundStream(srv any, stream grpc.ServerStream, info *grpc.StreamServerInfo, handle grpc.StreamHandler) error {
 	// At once: it may be long until a stream has something to say.
 	if err := stream.SendHeader(s.header()); err != nil {
 		return err
 	}
-	return handle(srv, stream)
+	return s.guardStream(srv, stream, info.FullMethod, handle)
 }
 
 // unknown answers calls that the server does not know.

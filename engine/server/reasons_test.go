@@ -1,6 +1,7 @@
 package server
 
 import (
+	"context"
 	"errors"
 	"fmt"
 	"io"
@@ -11,11 +12,13 @@ import (
 	"google.golang.org/genproto/googleapis/rpc/errdetails"
 	"google.golang.org/grpc"
 	"google.golang.org/grpc/codes"
+	"google.golang.org/grpc/metadata"
 	"google.golang.org/grpc/status"
 	"google.golang.org/protobuf/types/known/emptypb"
 
 	"leadline/engine/client"
 	"leadline/engine/sensor"
+	"leadline/engine/server/identity"
 	"leadline/engine/session"
 	"leadline/engine/wire"
 	leadlinev1 "leadline/proto/leadline/v1"
@@ -128,6 +131,17 @@ func wrongCalls(t *testing.T) []wrongCall {
 			last := wire.FromEvent(voyage(6, 10)[10])
 			change(last)
 			return refused(t, conn, append(ms, last)...)
+		}
+	}
+	access, token := byToken(t)
+	away, err := identity.NewTokens(identity.TokenConfig{Issuer: "http://127.0.0.1:1", Audience: "leadline"}) // where nobody answers
+	if err != nil {
+		t.Fatal(err)
+	}
+	mapsAs := func(as func(*testing.T) context.Context) func(*testing.T, *Server, *grpc.ClientConn) said {
+		return func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
+			_, err := leadlinev1.NewPositionServiceClient(conn).ListMaps(as(t), &leadlinev1.ListMapsRequest{})
+			return saidBy(err)
 		}
 	}
 	d := &leadlinev1.Open{Header: header("v"), Drive: "d"}
@@ -273,6 +287,25 @@ func wrongCalls(t *testing.T) []wrongCall {
 			_, err := put(limited(t), conn, beginning("sea", "plane a"), "plane a")
 			return saidBy(err)
 		}},
+		{leadlinev1.Reason_REASON_NO_IDENTITY, "", Config{Access: access}, mapsAs(limited)},
+		{leadlinev1.Reason_REASON_BAD_IDENTITY, "", Config{Access: access}, mapsAs(func(t *testing.T) context.Context { return showing(t, "token") })},
+		{leadlinev1.Reason_REASON_BAD_IDENTITY, "", Config{Access: access}, mapsAs(func(t *testing.T) context.Context {
+			return metadata.AppendToOutgoingContext(limited(t), "authorization", "Basic dmFuOnZhbg==")
+		})},
+		{leadlinev1.Reason_REASON_IDENTITY_EXPIRED, "", Config{Access: access}, mapsAs(func(t *testing.T) context.Context {
+			return showing(t, token("v", "roles", "vehicle", "exp", 1e9))
+		})},
+		{leadlinev1.Reason_REASON_IDENTITY_UNCHECKED, "", Config{Access: &Access{Tokens: away}}, mapsAs(func(t *testing.T) context.Context {
+			return showing(t, token("v", "roles", "vehicle"))
+		})},
+		{leadlinev1.Reason_REASON_NOT_ALLOWED, "method", Config{Access: access}, func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
+			_, err := leadlinev1.NewPositionServiceClient(conn).ListVehicles(showing(t, token("v", "roles", "vehicle")), &leadlinev1.ListVehiclesRequest{})
+			return saidBy(err)
+		}},
+		{leadlinev1.Reason_REASON_NOT_ALLOWED, "method vehicle", Config{Access: access}, func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
+			_, err := leadlinev1.NewPositionServiceClient(conn).EndDrive(showing(t, token("v", "roles", "vehicle")), &leadlinev1.EndDriveRequest{Vehicle: "w"})
+			return saidBy(err)
+		}},
 		{leadlinev1.Reason_REASON_NOT_OFFERED, "-", Config{NewSession: newTally}, ask(&leadlinev1.WhereRequest{Vehicles: []string{"v"}, RegionFractions: []float64{0.5}})},
 	}
 }
@@ -326,6 +359,7 @@ func TestReasonCodes(t *testing.T) {
 			codes.FailedPrecondition: "failed_precondition", codes.ResourceExhausted: "resource_exhausted",
 			codes.DeadlineExceeded: "deadline_exceeded", codes.Aborted: "aborted", codes.Unavailable: "unavailable",
 			codes.Internal: "internal", codes.Unimplemented: "unimplemented",
+			codes.Unauthenticated: "unauthenticated", codes.PermissionDenied: "permission_denied",
 		}[code])
 		if says := reasonComment(t, r); !strings.HasSuffix(says, " "+want+".") {
 			t.Errorf("%v has the code %s; reason.proto says: %s", r, want, says)

@@ -80,6 +80,7 @@ func New(cfg Config) (*Server, error) {
 		atlas:       newAtlas(cfg.Maps),
 	}
 	s.grpc = grpc.NewServer(
+		grpc.Creds(web.Credentials()),
 		grpc.MaxRecvMsgSize(cfg.Limits.MessageBytes),
 		grpc.MaxHeaderListSize(16<<10),
 		// Of one connection: beyond, its calls wait unanswered, so that all
@@ -120,7 +121,7 @@ func New(cfg Config) (*Server, error) {
 // Serve answers on a listener, which it closes, until Shutdown; then it
 // returns nil. HTTP/2 is taken for gRPC, all else for HTTP/1.1.
 func (s *Server) Serve(l net.Listener) error {
-	http2, others := web.Split(l)
+	http2, others := web.Split(l, s.cfg.Encryption)
 	answered := make(chan error, 1)
 	go func() { answered <- s.web.Serve(others) }()
 	err := s.grpc.Serve(http2)

@@ -3,6 +3,8 @@ package server
 import (
 	"context"
 
+	"google.golang.org/protobuf/proto"
+
 	"leadline/engine/sensor"
 	"leadline/engine/wire"
 	leadlinev1 "leadline/proto/leadline/v1"
@@ -16,7 +18,9 @@ func (s *Server) AddSighting(ctx context.Context, req *leadlinev1.AddSightingReq
 	if req.GetSighting() == nil {
 		return nil, badField("sighting", "sighting is missing: say where the vehicle was seen")
 	}
-	m := &leadlinev1.Measurement{Kind: &leadlinev1.Measurement_Sighting{Sighting: req.GetSighting()}}
+	sighting := proto.CloneOf(req.GetSighting())
+	sighting.Who = by(ctx, sighting.GetWho())
+	m := &leadlinev1.Measurement{Kind: &leadlinev1.Measurement_Sighting{Sighting: sighting}}
 	z, err := wire.ToMeasurement(m)
 	if err == nil {
 		err = z.Check(0)
@@ -72,7 +76,7 @@ func (s *Server) AddSighting(ctx context.Context, req *leadlinev1.AddSightingReq
 	if err != nil {
 		return nil, err
 	}
-	s.cfg.Log.Info("sighting entered", "vehicle", o.vehicle, "drive", o.drive, "who", clip(req.GetSighting().GetWho()), "drive_time", ts.AsTime(), "refused", refused.GetDetail())
+	s.cfg.Log.Info("sighting entered", "vehicle", o.vehicle, "drive", o.drive, "who", clip(sighting.GetWho()), "drive_time", ts.AsTime(), "refused", refused.GetDetail())
 	return &leadlinev1.AddSightingResponse{Measurement: entered, Refusal: refused, Before: before, After: after}, nil
 }
 

@@ -4,6 +4,7 @@
  * @param {unknown} reason
  */
 export function away(reason: unknown): boolean;
+export function shows(token?: Token | undefined): import("@connectrpc/connect").Interceptor[];
 export function sleep(ms: number): Promise<any>;
 /**
  * Asks a Leadline server where vehicles are. Failures are ConnectErrors: code
@@ -148,3 +149,7 @@ export class Client {
 }
 export type WhereWishes = import("@bufbuild/protobuf").MessageInitShape<typeof import("./leadline/v1/where_pb.js").WhereRequestSchema>;
 export type FollowWishes = import("@bufbuild/protobuf").MessageInitShape<typeof import("./leadline/v1/follow_pb.js").FollowRequestSchema>;
+/**
+ * A bearer token, or what gives one for each call.
+ */
+export type Token = string | (() => string | Promise<string>);

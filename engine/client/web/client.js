@@ -8,6 +8,26 @@ import { PositionService } from "./leadline/v1/service_pb.js";
  * @typedef {import("@bufbuild/protobuf").MessageInitShape<typeof import("./leadline/v1/follow_pb.js").FollowRequestSchema>} FollowWishes
  */
 
+/**
+ * A bearer token, or what gives one for each call.
+ * @typedef {string | (() => string | Promise<string>)} Token
+ */
+
+/**
+ * Shows a token with each call.
+ * @param {Token} [token]
+ * @returns {import("@connectrpc/connect").Interceptor[]}
+ */
+export const shows = (token) =>
+  token
+    ? [
+        (next) => async (request) => {
+          request.header.set("Authorization", "Bearer " + (typeof token === "string" ? token : await token()));
+          return next(request);
+        },
+      ]
+    : [];
+
 /** @param {number} ms */
 export const sleep = (ms) => new Promise((resolve) => setTimeout(resolve, ms));
 

@@ -1,8 +1,23 @@
-export function connect(address: string): NodeClient;
+export function connect(address: string, security?: Security | undefined): NodeClient;
+/**
+ * How a server is reached, and who calls. tls, or any of ca (authorities), cert and key
+ * (one's own), all PEM texts, encrypt. Without encryption a token goes to this
+ * machine alone.
+ */
+export type Security = {
+    tls?: boolean;
+    ca?: string;
+    cert?: string;
+    key?: string;
+    token?: import("./client.js").Token;
+};
 /** A Client that can feed, too. */
 declare class NodeClient extends Client {
-    /** @param {string} address */
-    constructor(address: string);
+    /**
+     * @param {string} address
+     * @param {Security} security
+     */
+    constructor(address: string, { tls, ca, cert, key, token }: Security);
     /** Closes the connection. */
     close: () => void;
     /**

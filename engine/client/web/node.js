@@ -11,26 +11,41 @@
 import { create, fromJson } from "@bufbuild/protobuf";
 import { ConnectError } from "@connectrpc/connect";
 import { Http2SessionManager, createGrpcTransport } from "@connectrpc/connect-node";
-import { Client, away, sleep } from "./client.js";
+import { Client, away, shows, sleep } from "./client.js";
 import { DriveHeaderSchema } from "./leadline/v1/drive_pb.js";
 import { FeedRequestSchema, OpenSchema, OpenedSchema, Reply } from "./leadline/v1/feed_pb.js";
 import { SensorMeasurementSchema } from "./leadline/v1/measurement_pb.js";
 
 /**
+ * How a server is reached, and who calls. tls, or any of ca (authorities), cert and key
+ * (one's own), all PEM texts, encrypt. Without encryption a token goes to this
+ * machine alone.
+ * @typedef {{tls?: boolean, ca?: string, cert?: string, key?: string, token?: import("./client.js").Token}} Security
+ */
+
+/**
  * Connects a program to a server.
  * @param {string} address HOST:PORT
+ * @param {Security} [security]
  */
-export const connect = (address) => new NodeClient(address);
+export const connect = (address, security = {}) => new NodeClient(address, security);
 
 /** @type {(schema: any, given: any) => any} */
 const message = (schema, given) => (given.$typeName ? given : fromJson(schema, given));
 
 /** A Client that can feed, too. */
 class NodeClient extends Client {
-  /** @param {string} address */
-  constructor(address) {
-    const session = new Http2SessionManager("http://" + address, { pingIntervalMs: 30_000, pingTimeoutMs: 10_000 });
-    super(createGrpcTransport({ baseUrl: "http://" + address, sessionManager: session }));
+  /**
+   * @param {string} address
+   * @param {Security} security
+   */
+  constructor(address, { tls = false, ca, cert, key, token }) {
+    const encrypted = tls || ca || cert || key;
+    if (token && !encrypted && !/^(127\.0\.0\.1|\[::1\]|localhost):\d+$/.test(address))
+      throw new Error("a token would go in the clear to another machine: give tls");
+    const baseUrl = (encrypted ? "https://" : "http://") + address;
+    const session = new Http2SessionManager(baseUrl, { pingIntervalMs: 30_000, pingTimeoutMs: 10_000 }, encrypted ? { ca, cert, key } : {});
+    super(createGrpcTransport({ baseUrl, sessionManager: session, interceptors: shows(token) }));
     /** Closes the connection. */
     this.close = () => session.abort();
   }

@@ -69,7 +69,11 @@ func newCall(ctx context.Context, spec connect.Spec, stream connect.ServerStream
 		md[strings.ToLower(key)] = values
 	}
 	ctx = metadata.NewIncomingContext(ctx, md)
-	ctx = peer.NewContext(ctx, &peer.Peer{Addr: address(info.PeerAddr)})
+	from := &peer.Peer{Addr: address(info.PeerAddr)}
+	if state := encryptionOf(ctx); state != nil {
+		from.AuthInfo = AuthInfo(*state)
+	}
+	ctx = peer.NewContext(ctx, from)
 	c.ctx = grpc.NewContextWithServerTransportStream(ctx, transport{c, spec.Procedure})
 	return c
 }

@@ -41,7 +41,8 @@ func (g *guard) check(r *http.Request) error {
 		host = h
 	}
 	host = strings.ToLower(strings.Trim(host, "[]"))
-	if net.ParseIP(host) == nil && host != "localhost" && !g.hosts[host] {
+	// A certificate has proved the name where there is one.
+	if net.ParseIP(host) == nil && host != "localhost" && !g.hosts[host] && encryptionOf(r.Context()) == nil {
 		return fmt.Errorf("this server does not know itself as host %.200q: ask under its address, or start it with --origin and the name", r.Host)
 	}
 	if err := g.protection.Check(r); err != nil {
@@ -63,7 +64,7 @@ func (g *guard) cross(w http.ResponseWriter, r *http.Request) (answered bool) {
 		h.Set("Access-Control-Expose-Headers", "Leadline-Version, Grpc-Status, Grpc-Message, Grpc-Status-Details-Bin")
 		if asked {
 			h.Set("Access-Control-Allow-Methods", "POST")
-			h.Set("Access-Control-Allow-Headers", "Content-Type, Connect-Protocol-Version, Connect-Timeout-Ms, Grpc-Timeout, X-Grpc-Web, X-User-Agent")
+			h.Set("Access-Control-Allow-Headers", "Authorization, Content-Type, Connect-Protocol-Version, Connect-Timeout-Ms, Grpc-Timeout, X-Grpc-Web, X-User-Agent")
 			h.Set("Access-Control-Max-Age", "7200")
 		}
 	}

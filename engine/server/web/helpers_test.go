@@ -133,7 +133,7 @@ func serveBoth(t testing.TB, cfg Config) *both {
 		t.Fatal(err)
 	}
 	b.address = l.Addr().String()
-	http2, others := Split(l)
+	http2, others := Split(l, nil)
 	served := make(chan error, 2)
 	go func() { served <- g.Serve(http2) }()
 	go func() { served <- b.web.Serve(others) }()

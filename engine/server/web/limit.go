@@ -1,6 +1,7 @@
 package web
 
 import (
+	"crypto/tls"
 	"io"
 	"log/slog"
 	"net"
@@ -105,5 +106,8 @@ func (c *counted) Close() error {
 	c.free()
 	return c.Conn.Close()
 }
+
+// Encryption is what was agreed with the other end; nil in plain text.
+func (c *counted) Encryption() *tls.ConnectionState { return encryption(c.Conn) }
 
 func (c *counted) CloseWrite() error { return closeWrite(c.Conn) }

@@ -91,7 +91,8 @@ func New(cfg Config) (*Server, error) {
 	s.http = &http.Server{
 		Handler: s, Protocols: &protocols,
 		ReadHeaderTimeout: cfg.times.head, IdleTimeout: cfg.times.idle, MaxHeaderBytes: headBytes,
-		ErrorLog: slog.NewLogLogger(cfg.Log.Handler(), slog.LevelWarn),
+		ErrorLog:    slog.NewLogLogger(cfg.Log.Handler(), slog.LevelWarn),
+		ConnContext: withEncryption,
 	}
 	return s, nil
 }

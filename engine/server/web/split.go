@@ -2,6 +2,8 @@ package web
 
 import (
 	"context"
+	"crypto/tls"
+	"errors"
 	"io"
 	"net"
 	"sync"
@@ -22,14 +24,15 @@ const (
 // Split parts the connections of a listener: those that begin with the preface
 // of HTTP/2 and all others. It takes the listener over; closing either part
 // closes it and the other part. A connection that says nothing for some seconds,
-// or stops within the preface, is closed.
-func Split(l net.Listener) (http2, others net.Listener) {
-	return split(l, patience)
+// or stops within the preface, is closed. With secure they are encrypted, and
+// what is in them is parted.
+func Split(l net.Listener, secure *tls.Config) (http2, others net.Listener) {
+	return split(l, secure, patience)
 }
 
-func split(l net.Listener, patience time.Duration) (http2, others *part) {
+func split(l net.Listener, secure *tls.Config, patience time.Duration) (http2, others *part) {
 	ctx, stop := context.WithCancelCause(context.Background())
-	s := &splitter{l: l, patience: patience, ctx: ctx, stop: stop, undecided: make(chan struct{}, undecided), close: sync.OnceValue(l.Close)}
+	s := &splitter{l: l, secure: secure, patience: patience, ctx: ctx, stop: stop, undecided: make(chan struct{}, undecided), close: sync.OnceValue(l.Close)}
 	s.http2 = &part{splitter: s, conns: make(chan net.Conn)}
 	s.others = &part{splitter: s, conns: make(chan net.Conn)}
 	s.running.Go(s.run)
@@ -39,6 +42,7 @@ func split(l net.Listener, patience time.Duration) (http2, others *part) {
 // splitter is what the two parts of a listener share.
 type splitter struct {
 	l             net.Listener
+	secure        *tls.Config // nil for plain text
 	patience      time.Duration
 	http2, others *part
 
@@ -76,14 +80,20 @@ func (s *splitter) run() {
 
 // part hands a connection on once it is known what it speaks.
 func (s *splitter) part(c net.Conn) {
-	hurry := context.AfterFunc(s.ctx, func() { _ = c.SetReadDeadline(time.Unix(1, 0)) })
-	_ = c.SetReadDeadline(time.Now().Add(s.patience))
-	head, isHTTP2, err := sniff(c)
+	raw := c
+	hurry := context.AfterFunc(s.ctx, func() { _ = raw.SetDeadline(time.Unix(1, 0)) })
+	_ = raw.SetDeadline(time.Now().Add(s.patience))
+	c, err := s.encrypt(raw)
+	var head []byte
+	var isHTTP2 bool
+	if err == nil {
+		head, isHTTP2, err = sniff(c)
+	}
 	if !hurry() || err != nil {
 		_ = c.Close()
 		return
 	}
-	_ = c.SetReadDeadline(time.Time{})
+	_ = raw.SetDeadline(time.Time{})
 	to := s.others
 	if isHTTP2 {
 		to = s.http2
@@ -93,6 +103,26 @@ func (s *splitter) part(c net.Conn) {
 	case <-s.ctx.Done():
 		_ = c.Close()
 	}
+}
+
+// inTheClear is the answer to a request of HTTP/1.1 where encryption is wanted.
+const inTheClear = "HTTP/1.0 400 Bad Request\r\nContent-Type: text/plain\r\n\r\nthis port is encrypted: ask by https\n"
+
+// encrypt shakes hands. Who speaks HTTP in the clear is told so.
+func (s *splitter) encrypt(c net.Conn) (net.Conn, error) {
+	if s.secure == nil {
+		return c, nil
+	}
+	t := tls.Server(c, s.secure)
+	err := t.HandshakeContext(s.ctx)
+	var plain tls.RecordHeaderError
+	if errors.As(err, &plain) && plain.Conn != nil {
+		switch string(plain.RecordHeader[:]) {
+		case "GET /", "HEAD ", "POST ", "OPTIO":
+			_, _ = io.WriteString(c, inTheClear)
+		}
+	}
+	return t, err
 }
 
 // sniff reads until it is certain whether a connection begins with the preface
@@ -152,6 +182,21 @@ func (c *begun) Read(b []byte) (int, error) {
 	n := copy(b, c.head)
 	c.head = c.head[n:]
 	return n, nil
+}
+
+// Encryption returns what was agreed with the other end; nil in plain text.
+func (c *begun) Encryption() *tls.ConnectionState { return encryption(c.Conn) }
+
+// encryption looks through what wraps a connection.
+func encryption(c net.Conn) *tls.ConnectionState {
+	switch c := c.(type) {
+	case *tls.Conn:
+		state := c.ConnectionState()
+		return &state
+	case interface{ Encryption() *tls.ConnectionState }:
+		return c.Encryption()
+	}
+	return nil
 }
 
 // CloseWrite is what net/http looks for, so that its last word arrives where

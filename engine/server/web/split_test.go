@@ -86,7 +86,7 @@ func splitHere(t *testing.T, patience time.Duration) (address string, http2, oth
 	if err != nil {
 		t.Fatal(err)
 	}
-	http2, others = split(l, patience)
+	http2, others = split(l, nil, patience)
 	t.Cleanup(func() {
 		_ = others.Close()
 		_ = http2.Close()
@@ -195,7 +195,7 @@ func TestSplitAcceptFails(t *testing.T) {
 		t.Fatal(err)
 	}
 	broken := errors.New("broken")
-	http2, others := split(&failing{l, []error{passing{io.EOF}, passing{io.EOF}, broken}}, time.Hour)
+	http2, others := split(&failing{l, []error{passing{io.EOF}, passing{io.EOF}, broken}}, nil, time.Hour)
 	for _, p := range []*part{http2, others} {
 		if _, err := p.Accept(); !errors.Is(err, broken) {
 			t.Errorf("accept: %v", err)

@@ -91,6 +91,21 @@ const (
 	Reason_REASON_MAP_EXISTS Reason = 40
 	// There is no alarm of that number on record. NOT_FOUND.
 	Reason_REASON_UNKNOWN_ALARM Reason = 41
+	// Who calls has shown neither a token nor a client certificate, and this call
+	// needs to know. UNAUTHENTICATED.
+	Reason_REASON_NO_IDENTITY Reason = 42
+	// A token or a client certificate does not count: it is damaged, of another
+	// issuer or for another server, or names no role. UNAUTHENTICATED.
+	Reason_REASON_BAD_IDENTITY Reason = 43
+	// A token or a client certificate was good and is so no more; also where it
+	// ends while a stream goes on. UNAUTHENTICATED.
+	Reason_REASON_IDENTITY_EXPIRED Reason = 44
+	// The issuer's keys cannot be had, so that no token can be checked.
+	// UNAVAILABLE.
+	Reason_REASON_IDENTITY_UNCHECKED Reason = 45
+	// The caller's roles do not allow the call, or not for that vehicle.
+	// PERMISSION_DENIED.
+	Reason_REASON_NOT_ALLOWED Reason = 46
 )
 
 // Enum value maps for Reason.
@@ -125,37 +140,47 @@ var (
 		39: "REASON_BAD_MAP",
 		40: "REASON_MAP_EXISTS",
 		41: "REASON_UNKNOWN_ALARM",
+		42: "REASON_NO_IDENTITY",
+		43: "REASON_BAD_IDENTITY",
+		44: "REASON_IDENTITY_EXPIRED",
+		45: "REASON_IDENTITY_UNCHECKED",
+		46: "REASON_NOT_ALLOWED",
 	}
 	Reason_value = map[string]int32{
-		"REASON_UNSPECIFIED":     0,
-		"REASON_UNUSABLE":        1,
-		"REASON_WRONG_SPACE":     2,
-		"REASON_TOO_LATE":        3,
-		"REASON_TOO_EARLY":       4,
-		"REASON_CONFLICTING":     5,
-		"REASON_TOO_MUCH":        7,
-		"REASON_BAD_FIELD":       20,
-		"REASON_WRONG_MESSAGE":   21,
-		"REASON_UNKNOWN_MAP":     22,
-		"REASON_UNKNOWN_SUITE":   23,
-		"REASON_UNKNOWN_VEHICLE": 24,
-		"REASON_BAD_START":       25,
-		"REASON_OTHER_HEADER":    26,
-		"REASON_OTHER_DRIVE":     27,
-		"REASON_OUT_OF_ORDER":    28,
-		"REASON_DRIVE_ENDED":     29,
-		"REASON_NO_POSTERIOR":    30,
-		"REASON_SERVER_FULL":     31,
-		"REASON_SILENT":          32,
-		"REASON_TAKEN_OVER":      33,
-		"REASON_REPLACED":        34,
-		"REASON_STOPPING":        35,
-		"REASON_SESSION_FAILED":  36,
-		"REASON_NOT_OFFERED":     37,
-		"REASON_BAD_TOKEN":       38,
-		"REASON_BAD_MAP":         39,
-		"REASON_MAP_EXISTS":      40,
-		"REASON_UNKNOWN_ALARM":   41,
+		"REASON_UNSPECIFIED":        0,
+		"REASON_UNUSABLE":           1,
+		"REASON_WRONG_SPACE":        2,
+		"REASON_TOO_LATE":           3,
+		"REASON_TOO_EARLY":          4,
+		"REASON_CONFLICTING":        5,
+		"REASON_TOO_MUCH":           7,
+		"REASON_BAD_FIELD":          20,
+		"REASON_WRONG_MESSAGE":      21,
+		"REASON_UNKNOWN_MAP":        22,
+		"REASON_UNKNOWN_SUITE":      23,
+		"REASON_UNKNOWN_VEHICLE":    24,
+		"REASON_BAD_START":          25,
+		"REASON_OTHER_HEADER":       26,
+		"REASON_OTHER_DRIVE":        27,
+		"REASON_OUT_OF_ORDER":       28,
+		"REASON_DRIVE_ENDED":        29,
+		"REASON_NO_POSTERIOR":       30,
+		"REASON_SERVER_FULL":        31,
+		"REASON_SILENT":             32,
+		"REASON_TAKEN_OVER":         33,
+		"REASON_REPLACED":           34,
+		"REASON_STOPPING":           35,
+		"REASON_SESSION_FAILED":     36,
+		"REASON_NOT_OFFERED":        37,
+		"REASON_BAD_TOKEN":          38,
+		"REASON_BAD_MAP":            39,
+		"REASON_MAP_EXISTS":         40,
+		"REASON_UNKNOWN_ALARM":      41,
+		"REASON_NO_IDENTITY":        42,
+		"REASON_BAD_IDENTITY":       43,
+		"REASON_IDENTITY_EXPIRED":   44,
+		"REASON_IDENTITY_UNCHECKED": 45,
+		"REASON_NOT_ALLOWED":        46,
 	}
 )
 
@@ -247,7 +272,7 @@ const file_leadline_v1_reason_proto_rawDesc = "" +
 	"\x18leadline/v1/reason.proto\x12\vleadline.v1\"P\n" +
 	"\aFailure\x12+\n" +
 	"\x06reason\x18\x01 \x01(\x0e2\x13.leadline.v1.ReasonR\x06reason\x12\x18\n" +
-	"\amessage\x18\x02 \x01(\tR\amessage*\xae\x05\n" +
+	"\amessage\x18\x02 \x01(\tR\amessage*\xb3\x06\n" +
 	"\x06Reason\x12\x16\n" +
 	"\x12REASON_UNSPECIFIED\x10\x00\x12\x13\n" +
 	"\x0fREASON_UNUSABLE\x10\x01\x12\x16\n" +
@@ -277,7 +302,12 @@ const file_leadline_v1_reason_proto_rawDesc = "" +
 	"\x10REASON_BAD_TOKEN\x10&\x12\x12\n" +
 	"\x0eREASON_BAD_MAP\x10'\x12\x15\n" +
 	"\x11REASON_MAP_EXISTS\x10(\x12\x18\n" +
-	"\x14REASON_UNKNOWN_ALARM\x10)B'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
+	"\x14REASON_UNKNOWN_ALARM\x10)\x12\x16\n" +
+	"\x12REASON_NO_IDENTITY\x10*\x12\x17\n" +
+	"\x13REASON_BAD_IDENTITY\x10+\x12\x1b\n" +
+	"\x17REASON_IDENTITY_EXPIRED\x10,\x12\x1d\n" +
+	"\x19REASON_IDENTITY_UNCHECKED\x10-\x12\x16\n" +
+	"\x12REASON_NOT_ALLOWED\x10.B'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
 
 var (
 	file_leadline_v1_reason_proto_rawDescOnce sync.Once

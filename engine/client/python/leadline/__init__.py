@@ -34,12 +34,25 @@ def _message(kind, given):
     return given if isinstance(given, kind) else json_format.ParseDict(given, kind())
 
 
-class Client:
-    """A connection to a server. patience_s is how long to try again when it is away."""
+def _read(path):
+    with open(path, "rb") as f:
+        return f.read()
 
-    def __init__(self, address, patience_s=60):
-        self.patience_s = patience_s
-        self._channel = grpc.insecure_channel(address, options=_OPTIONS)
+
+class Client:
+    """A connection to a server. patience_s is how long to try again when it is away. With tls it is encrypted,
+    and with a file of authorities, ca, or of one's own certificate, cert and key; all PEM. token is a bearer
+    token, or a function that gives one for each call; without encryption it goes to this machine alone."""
+
+    def __init__(self, address, patience_s=60, tls=False, ca=None, cert=None, key=None, token=None):
+        self.patience_s, self._token = patience_s, token
+        if tls or ca or cert or key:
+            secure = grpc.ssl_channel_credentials(*(_read(f) if f else None for f in (ca, key, cert)))
+            self._channel = grpc.secure_channel(address, secure, options=_OPTIONS)
+        elif token and address.rpartition(":")[0] not in ("127.0.0.1", "[::1]", "localhost"):
+            raise ValueError("a token would go in the clear to another machine: give tls=True")
+        else:
+            self._channel = grpc.insecure_channel(address, options=_OPTIONS)
         call = lambda kind, name, request, response: kind(_SERVICE + name, request.SerializeToString, response.FromString)
         self._feed = call(self._channel.stream_stream, "Feed", v1.FeedRequest, v1.FeedResponse)
         self._where = call(self._channel.unary_unary, "Where", v1.WhereRequest, v1.WhereResponse)
@@ -51,16 +64,21 @@ class Client:
     def __exit__(self, *_):
         self._channel.close()
 
+    def _shown(self):
+        """What a call shows of who makes it."""
+        token = self._token() if callable(self._token) else self._token
+        return [("authorization", "Bearer " + token)] if token else []
+
     def where(self, *vehicles, timeout_s=10, **wishes):
         """Says where vehicles are; wishes are further fields of WhereRequest."""
-        return self._where(v1.WhereRequest(vehicles=vehicles, **wishes), timeout=timeout_s)
+        return self._where(v1.WhereRequest(vehicles=vehicles, **wishes), timeout=timeout_s, metadata=self._shown())
 
     def follow(self, *vehicles, **wishes):
         """Tells of vehicles as they move on, of all if none is named; wishes are further fields of
         FollowRequest. When the stream breaks, it goes on after what has been told."""
         request, tries = v1.FollowRequest(vehicles=vehicles, **wishes), 0
         while True:
-            stream, began = self._follow(request), time.monotonic()
+            stream, began = self._follow(request, metadata=self._shown()), time.monotonic()
             try:
                 for news in stream:
                     request.resume_token = news.resume_token
@@ -105,7 +123,7 @@ class Drive:
 
     def _connect(self):
         self._requests, self._lost = queue.SimpleQueue(), False
-        self._stream = self._client._feed(iter(self._requests.get, None))
+        self._stream = self._client._feed(iter(self._requests.get, None), metadata=self._client._shown())
         self._requests.put(v1.FeedRequest(open=self._opening))
         try:
             self.opened = next(self._stream).opened

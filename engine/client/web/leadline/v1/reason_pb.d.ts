@@ -250,6 +250,46 @@ export enum Reason {
    * @generated from enum value: REASON_UNKNOWN_ALARM = 41;
    */
   UNKNOWN_ALARM = 41,
+
+  /**
+   * Who calls has shown neither a token nor a client certificate, and this call
+   * needs to know. UNAUTHENTICATED.
+   *
+   * @generated from enum value: REASON_NO_IDENTITY = 42;
+   */
+  NO_IDENTITY = 42,
+
+  /**
+   * A token or a client certificate does not count: it is damaged, of another
+   * issuer or for another server, or names no role. UNAUTHENTICATED.
+   *
+   * @generated from enum value: REASON_BAD_IDENTITY = 43;
+   */
+  BAD_IDENTITY = 43,
+
+  /**
+   * A token or a client certificate was good and is so no more; also where it
+   * ends while a stream goes on. UNAUTHENTICATED.
+   *
+   * @generated from enum value: REASON_IDENTITY_EXPIRED = 44;
+   */
+  IDENTITY_EXPIRED = 44,
+
+  /**
+   * The issuer's keys cannot be had, so that no token can be checked.
+   * UNAVAILABLE.
+   *
+   * @generated from enum value: REASON_IDENTITY_UNCHECKED = 45;
+   */
+  IDENTITY_UNCHECKED = 45,
+
+  /**
+   * The caller's roles do not allow the call, or not for that vehicle.
+   * PERMISSION_DENIED.
+   *
+   * @generated from enum value: REASON_NOT_ALLOWED = 46;
+   */
+  NOT_ALLOWED = 46,
 }
 
 /**
