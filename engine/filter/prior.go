@@ -69,6 +69,62 @@ func (p Within) Density(dst []float64, at *Columns) {
 	}
 }
 
+// leastExtent is the standard deviation of a prior along the direction in which
+// that is least, m; +Inf of the whole map.
+func leastExtent(p Prior) float64 {
+	switch p := p.(type) {
+	case AtPoint:
+		return p.SigmaM
+	case Within:
+		c := p.covariance()
+		if v := narrow(c[:]); v > 0 {
+			return math.Sqrt(v)
+		}
+	}
+	return math.Inf(1)
+}
+
+// covariance is that of a point drawn from the polygon, EE, EN, NN: by Green's
+// theorem over its edges, which is exact. Rings after the first are holes,
+// whichever way round they go.
+func (p Within) covariance() [3]float64 {
+	origin := p.Box().Min // so that far-off frames cost no digits
+	var area float64
+	var first [2]float64
+	var second [3]float64
+	for i, ring := range p.Rings {
+		var a float64
+		var m [2]float64
+		var s [3]float64
+		for j := range ring {
+			u, v := ring[j].Sub(origin), ring[(j+1)%len(ring)].Sub(origin)
+			cross := float64(u.E*v.N) - float64(v.E*u.N)
+			a += cross / 2
+			m[0] += float64(cross * (u.E + v.E) / 6)
+			m[1] += float64(cross * (u.N + v.N) / 6)
+			s[0] += float64(cross * (float64(u.E*u.E) + float64(u.E*v.E) + float64(v.E*v.E)) / 12)
+			s[1] += float64(cross * (float64(u.E*v.N) + float64(2*u.E*u.N) + float64(2*v.E*v.N) + float64(v.E*u.N)) / 24)
+			s[2] += float64(cross * (float64(u.N*u.N) + float64(u.N*v.N) + float64(v.N*v.N)) / 12)
+		}
+		sign := 1.0
+		if (a < 0) != (i > 0) {
+			sign = -1
+		}
+		area += float64(sign * a)
+		for j := range m {
+			first[j] += float64(sign * m[j])
+		}
+		for j := range s {
+			second[j] += float64(sign * s[j])
+		}
+	}
+	if !(area > 0) {
+		return [3]float64{}
+	}
+	e, n := first[0]/area, first[1]/area
+	return [3]float64{second[0]/area - float64(e*e), second[1]/area - float64(e*n), second[2]/area - float64(n*n)}
+}
+
 // Anywhere is a uniform prior over the whole map.
 type Anywhere struct{}
 

@@ -175,14 +175,11 @@ func (b *Belief) seedPlane(s PlaneSpace, prior Prior, maxCells int) error {
 	if math.IsInf(box.Max.E-box.Min.E, 1) || math.IsInf(box.Max.N-box.Min.N, 1) {
 		return errors.New("filter: a plane without bounds needs a start with bounds")
 	}
-	h := s.DetailM()
-	if p, ok := prior.(AtPoint); ok {
-		fine := fineScale
-		if len(b.Quantities) > 0 {
-			fine = coarseGaussians
-		}
-		h = math.Min(h, fine*p.SigmaM)
+	fine := fineScale
+	if len(b.Quantities) > 0 {
+		fine = coarseGaussians
 	}
+	h := math.Min(s.DetailM(), fine*leastExtent(prior))
 	if !(h > 0) {
 		return fmt.Errorf("filter: no lattice with a spacing of %v m", h)
 	}
@@ -201,8 +198,14 @@ func (b *Belief) seedPlane(s PlaneSpace, prior Prior, maxCells int) error {
 	if len(b.Quantities) > 0 {
 		return b.seedCells(s, prior, col0, col1, row0, row1)
 	}
+	// What is smooth is read at the points; an area has an edge.
+	finer := 1
+	if _, ok := prior.(Within); ok {
+		finer = subPoints
+	}
 	var at Columns
 	at.Resize(WantPosition, 2, tileCells)
+	density := make([]float64, tileCells)
 	total := 0.0
 	for r := floorDiv(row0, TileSide); r <= floorDiv(row1, TileSide); r++ {
 		for c := floorDiv(col0, TileSide); c <= floorDiv(col1, TileSide); c++ {
@@ -210,13 +213,20 @@ func (b *Belief) seedPlane(s PlaneSpace, prior Prior, maxCells int) error {
 			b.Tiles.At = append(b.Tiles.At, t)
 			n := len(b.Tiles.Mass)
 			b.Tiles.Mass = append(b.Tiles.Mass, make([]float64, tileCells)...)
-			b.Lattice.points(&at, t)
-			prior.Density(b.Tiles.Mass[n:], &at)
-			for i, v := range b.Tiles.Mass[n:] {
-				if !bounds.Contains(geo.Point{E: at.East[i], N: at.North[i]}) {
-					b.Tiles.Mass[n+i] = 0
-					continue
+			for i := range finer * finer {
+				b.Lattice.points(&at, t)
+				for j := range at.East {
+					at.East[j] += h * ((float64(i%finer)+0.5)/float64(finer) - 0.5)
+					at.North[j] += h * ((float64(i/finer)+0.5)/float64(finer) - 0.5)
 				}
+				prior.Density(density, &at)
+				for j, v := range density {
+					if bounds.Contains(geo.Point{E: at.East[j], N: at.North[j]}) {
+						b.Tiles.Mass[n+j] += v
+					}
+				}
+			}
+			for _, v := range b.Tiles.Mass[n:] {
 				total += v
 			}
 		}
