@@ -73,6 +73,11 @@ const (
 // is about that distance, by 1 %.
 const hairM2 = 0.002 * 0.002
 
+// dotM2 over the mean square distance is the major variance below which one disc
+// of that does, as for most of a belief over a whole town: two of its sigmas then
+// change a radius by 0.2 %, which cuspWidening covers.
+const dotM2 = 0.001 * 0.001
+
 // take adds one Gaussian with a mean at p from the circle's centre.
 func (s *Summarizer) take(mass float64, p geo.Point, c Cov, meanSquare float64) {
 	l1, l2 := c.eigen()
@@ -80,7 +85,8 @@ func (s *Summarizer) take(mass float64, p geo.Point, c Cov, meanSquare float64) 
 	case l1 == 0:
 		s.discs = append(s.discs, disc{mass: mass, d: p.Norm()})
 		return
-	case l2 >= asDisc*asDisc*l1:
+	case l2 >= asDisc*asDisc*l1, l1 < dotM2*meanSquare:
+		s.dots = s.dots || l2 < asDisc*asDisc*l1
 		sigma := math.Sqrt(l1)
 		s.discs = append(s.discs, disc{mass, p.Norm(), 1 / sigma, tailEnd * sigma})
 		return

@@ -41,7 +41,7 @@ func ringFrom(i int) float64 {
 
 // takeApart fills the pieces of the whole mixture around a centre.
 func (s *Summarizer) takeApart(centre geo.Point, meanSquare float64) {
-	s.discs, s.needles = s.discs[:0], s.needles[:0]
+	s.discs, s.needles, s.dots = s.discs[:0], s.needles[:0], false
 	for i, m := range s.mass {
 		if m > 0 {
 			s.take(m, geo.Point{E: s.east[i], N: s.north[i]}.Sub(centre), s.covs[i], meanSquare)
@@ -113,7 +113,7 @@ func (s *Summarizer) bracket(target float64) (low, high float64) {
 // the centre.
 func (s *Summarizer) radius(target, rms float64) float64 {
 	r := s.search(target, rms)
-	if len(s.needles) > 0 {
+	if len(s.needles) > 0 || s.dots {
 		r *= cuspWidening
 	}
 	return r
@@ -146,8 +146,8 @@ func (s *Summarizer) search(target, rms float64) float64 {
 			high = r
 			// Done if the slope here says that the root is radiusStep away:
 			// dr/r = y/(2r²·slope). It is the slope here if it was taken
-			// nearby.
-			if y >= 2*r2*slope*radiusStep && math.Abs(r2-lastR2) < 0.4*r2 {
+			// nearby. (It is -Inf where nothing is outside: far from the root.)
+			if !math.IsInf(y, -1) && y >= 2*r2*slope*radiusStep && math.Abs(r2-lastR2) < 0.4*r2 {
 				return high
 			}
 		} else {

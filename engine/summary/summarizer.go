@@ -37,7 +37,7 @@ type Summarizer struct {
 
 	discs, nearDiscs, activeDiscs       []disc
 	needles, nearNeedles, activeNeedles []needle
-	sorted                              bool
+	sorted, dots                        bool
 	beyond, maxReach                    float64
 	ringMass                            [rings]float64
 
