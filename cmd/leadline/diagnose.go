@@ -11,6 +11,7 @@ import (
 	"leadline/engine/geo"
 	"leadline/engine/sensor"
 	"leadline/engine/study/diagnose"
+	"leadline/engine/study/sweep"
 )
 
 // When a replay tries usual mistakes.
@@ -57,8 +58,8 @@ func explainedTime(text string, start sensor.Time) (sensor.Time, error) {
 }
 
 // look looks at a replay.
-func look(r *driveRun, path string) (*studies, error) {
-	f, err := diagnose.Look(r.result, r.record, r.track.Truth, r.drive.Events, r.config)
+func look(r *sweep.Kept, path string) (*studies, error) {
+	f, err := diagnose.Look(r.Result, r.Record, r.Truth, r.Drive.Events, r.Config)
 	if err != nil {
 		return nil, fmt.Errorf("%s: %w", path, err)
 	}
@@ -72,25 +73,25 @@ func (o *replayOptions) tries(f *diagnose.Findings) bool {
 
 // study tries usual mistakes if a replay is suspect, and explains the time that
 // was asked for.
-func (o *replayOptions) study(errs io.Writer, out *studies, r *driveRun, path string) (err error) {
+func (o *replayOptions) study(errs io.Writer, out *studies, m *mapFile, r *sweep.Kept, path string) (err error) {
 	if o.tries(out.Findings) {
 		show, end := progress(errs, driveName(path)+", usual mistakes")
-		how := diagnose.Options{Grids: r.m.grids(), Each: eachAtOnce, Progress: show}
+		how := diagnose.Options{Grids: m.grids(), Each: eachAtOnce, Progress: show}
 		if o.diagnose == diagnoseAuto {
-			how.Beside = r.record
+			how.Beside = r.Record
 		}
-		out.Diagnosis, err = diagnose.Run(r.drive, r.config, how)
+		out.Diagnosis, err = diagnose.Run(r.Drive, r.Config, how)
 		end()
 		if err != nil {
 			return fmt.Errorf("%s: trying usual mistakes: %w", path, err)
 		}
 	}
 	if o.explain != "" {
-		at, err := explainedTime(o.explain, r.result.Start)
+		at, err := explainedTime(o.explain, r.Result.Start)
 		if err != nil {
 			return err
 		}
-		if out.Explanation, err = diagnose.Explain(r.drive, r.config, at, o.explainWithin.Seconds()); err != nil {
+		if out.Explanation, err = diagnose.Explain(r.Drive, r.Config, at, o.explainWithin.Seconds()); err != nil {
 			return fmt.Errorf("%s: --explain %s: %w", path, o.explain, err)
 		}
 	}

@@ -15,6 +15,7 @@ import (
 	"leadline/engine/drivefile"
 	"leadline/engine/geo"
 	"leadline/engine/sensor"
+	"leadline/engine/study/results"
 	"leadline/fixtures/drives"
 	"leadline/fixtures/sim"
 	"leadline/terrain"
@@ -33,7 +34,7 @@ func replayed(t *testing.T, drivePath, mapPath string, more ...string) (rows []r
 	t.Helper()
 	out := t.TempDir()
 	good(t, append([]string{"replay", drivePath, "--map", mapPath, "--out", out}, more...)...)
-	f, err := os.Open(filepath.Join(out, setting, driveName(drivePath), "track.csv"))
+	f, err := os.Open(filepath.Join(out, results.Given, driveName(drivePath), "track.csv"))
 	if err != nil {
 		t.Fatal(err)
 	}

@@ -9,12 +9,15 @@ import (
 	"os"
 	"path/filepath"
 	"strings"
+	"sync"
 
 	"leadline/engine/filter"
 	"leadline/engine/geo"
 	"leadline/engine/plane"
 	"leadline/engine/session"
 	"leadline/engine/study/score"
+	"leadline/engine/study/sweep"
+	"leadline/engine/study/track"
 	"leadline/network"
 	"leadline/network/roadfile"
 	"leadline/terrain"
@@ -62,6 +65,22 @@ func mapName(path string) string {
 		name = strings.TrimSuffix(name, s)
 	}
 	return name
+}
+
+// forStudies is the map as studies take it.
+func (m *mapFile) forStudies() *sweep.Map {
+	out := &sweep.Map{Path: m.Path, Space: m.Space, Names: m.Names, Near: m.near()}
+	if m.Heights != nil {
+		meta := m.Heights.Meta()
+		out.Source, out.Licence = meta.Source, meta.Licence
+	} else {
+		d := m.Roads.Data()
+		out.Source, out.Licence = d.Source, d.Licence
+	}
+	out.Ground = sync.OnceValue(func() track.Ground {
+		return track.Ground{Frame: m.Space.Frame(), Roads: m.lines(), Relief: m.field()}
+	})
+	return out
 }
 
 // near returns the directed edges near a place, for scores; nil on a plane.

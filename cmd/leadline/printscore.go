@@ -4,10 +4,10 @@ import (
 	"encoding/json"
 	"fmt"
 	"io"
+	"math"
 	"strings"
 
-	"leadline/engine/study/replay"
-	"leadline/engine/study/score"
+	"leadline/engine/study/sweep"
 )
 
 // printJSONLine prints a value on one line.
@@ -21,13 +21,17 @@ func printJSONLine(w io.Writer, v any) error {
 }
 
 // printScore prints what a person wants to know of a score.
-func printScore(w io.Writer, s *score.Score, r *replay.Result) error {
+func printScore(w io.Writer, run *sweep.Outcome) error {
+	s := run.Score
 	var b strings.Builder
 	line := func(label, format string, args ...any) {
 		fmt.Fprintf(&b, "  %-12s %s\n", label, fmt.Sprintf(format, args...))
 	}
 	fmt.Fprintf(&b, "%s\n", s.Drive)
-	line("posteriors", "%d from %d measurements, %d refused", s.Posteriors, r.Accepted+r.Refused, r.Refused)
+	if s.Partial {
+		line("partial", "the drive was not run to its end: %s", s.Stopped)
+	}
+	line("posteriors", "%d from %d measurements, %d refused", s.Posteriors, run.Run.Accepted+run.Run.Refused, run.Run.Refused)
 	switch {
 	case s.LocatedAfterS == nil:
 		line("located", "never")
@@ -44,6 +48,28 @@ func printScore(w io.Writer, s *score.Score, r *replay.Result) error {
 		if f.ANEES != nil {
 			line("anees", "%.2f (2 is exact; 95 %% of independent samples in %.2f to %.2f)", *f.ANEES, *f.ANEESLow, *f.ANEESHigh)
 		}
+		if s.AlongRMSEM != nil {
+			line("along", "rms %.2f m (mean %+.2f m, forward), across rms %.2f m (mean %+.2f m, right)", *s.AlongRMSEM, *s.AlongMeanM, *s.AcrossRMSEM, *s.AcrossMeanM)
+		}
+		if s.CRPSM != nil && s.LogScore != nil {
+			line("proper", "CRPS %.2f m, log score %.2f nats (smaller is better); worth %.0f independent errors", *s.CRPSM, *s.LogScore, *s.Independent)
+		}
+		if x := s.Protection; x != nil && x.Share != nil {
+			line("protection", "truth outside in %d of %d posteriors, %d times: share %.2g, 95 %% in %.2g to %.2g; %.0e was asked for",
+				x.Beyond, x.Bounded, x.Episodes, *x.Share, *x.Low, *x.High, x.Risk)
+		}
+		if w := s.LongestWrong; w != nil {
+			line("wrong", "longest stretch located with the truth outside the 99 %% radius: %.1f s, %.0f m, from %.0f s after the start on", w.ForS, w.ForM, w.StartS)
+		}
+		if t := s.TruthNote; t != nil {
+			if len(t.Below) > 0 {
+				line("truth", "has an error of its own of %.2f m an axis: nothing is claimed by %s", t.SigmaM, strings.Join(t.Below, ", "))
+			}
+			if e := t.Estimate; e != nil {
+				line("offset", "of the truth, estimated and not taken off: forward %+.2f ± %.2f m, right %+.2f ± %.2f m, late %+.3f ± %.3f s",
+					e.ForwardM, e.ForwardSigmaM, e.RightM, e.RightSigmaM, e.LateS, e.LateSigmaS)
+			}
+		}
 		if f.RightRoadFraction != nil {
 			line("right road", "%.1f %%", 100**f.RightRoadFraction)
 		}
@@ -52,9 +78,67 @@ func printScore(w io.Writer, s *score.Score, r *replay.Result) error {
 	} else {
 		line("error", "not known: the drive holds no truth for its posteriors")
 	}
+	if h := s.HeldOutFixes; h != nil && h.RMSEM != nil {
+		line("fixes", "held out: rms %.2f m, 50 %% %.2f m, 95 %% %.2f m over %d, their own error (%.2f m an axis) in it; %.1f %% outside of what 95 %% should be in",
+			*h.RMSEM, *h.P50M, *h.P95M, h.Fixes, *h.SigmaM, 100**h.Outside)
+	}
+	for _, i := range s.Sensors {
+		if i.Whiteness != nil && (*i.Whiteness < 1e-3 || math.Abs(i.Mean) > 0.5 || i.SD > 1.5) {
+			line("innovations", "of %s (%s): mean %+.2f, sd %.2f (0 and 1 are right), whiteness p %.2g over %d", i.Sensor, i.Kind, i.Mean, i.SD, *i.Whiteness, i.Scores)
+		}
+	}
 	line("evidence", "%.1f nats", s.LogEvidence)
-	line("speed", "%.0f measurements a second, %.0f times real time", r.Timing.MeasurementsPerSecond, r.Timing.TimesRealTime)
+	if run.Resumed {
+		line("speed", "not run again: the same is in %s; --again runs it", run.Dir)
+	} else {
+		line("speed", "%.0f measurements a second, %.0f times real time", run.Timing.MeasurementsPerSecond, run.Timing.TimesRealTime)
+	}
 	line("sha256", "%s", s.PosteriorSHA256)
 	_, err := io.WriteString(w, b.String())
 	return err
+}
+
+// printSweep prints what the runs of a sweep come to.
+func printSweep(w io.Writer, s *sweep.Summary) error {
+	var b strings.Builder
+	row := func(name string, p *sweep.Pooled) {
+		fmt.Fprintf(&b, "  %-40s %6d %12.1f %8s %8s %8s %9s %6d %6d\n", name, p.Drives, p.LogEvidence,
+			figure(p.RMSEM, 1), figure(p.P95M, 1), figure(p.CRPSM, 1), figure(p.Coverage95, 100), p.Beyond, p.NeverLocated)
+	}
+	table := func(title string, of func(*sweep.Row) *sweep.Pooled) {
+		fmt.Fprintf(&b, "%s\n  %-40s %6s %12s %8s %8s %8s %9s %6s %6s\n", title, "setting", "drives", "evidence", "rmse m", "p95 m", "CRPS m", "in 95 %", "beyond", "never")
+		for i := range s.Rows {
+			if p := of(&s.Rows[i]); p != nil {
+				row(s.Rows[i].Setting, p)
+			}
+		}
+	}
+	title := "drives"
+	if len(s.HeldOut) > 0 {
+		title = "drives that are not held out"
+	}
+	table(title, func(r *sweep.Row) *sweep.Pooled { return &r.Figures })
+	if len(s.HeldOut) > 0 {
+		table("held out: "+strings.Join(s.HeldOut, ", "), func(r *sweep.Row) *sweep.Pooled { return r.HeldOut })
+	}
+	fmt.Fprintf(&b, "%d settings tried so far, %d runs here, %d of them from an earlier job, %d failed\n", s.SettingsTried, s.Runs, s.Resumed, s.Failed)
+	if s.Best != "" {
+		fmt.Fprintf(&b, "most evidence: %s. The best of %d settings looks better than it is", s.Best, s.SettingsTried)
+		if len(s.HeldOut) > 0 {
+			b.WriteString(": go by the drives that are held out")
+		} else {
+			b.WriteString(": hold some drives out (--hold-out)")
+		}
+		b.WriteString("\n")
+	}
+	_, err := io.WriteString(w, b.String())
+	return err
+}
+
+// figure is a number as text, – if it is not known.
+func figure(x *float64, by float64) string {
+	if x == nil {
+		return "–"
+	}
+	return fmt.Sprintf("%.2f", by**x)
 }

@@ -15,6 +15,7 @@ import (
 	"google.golang.org/protobuf/encoding/protojson"
 
 	"leadline/engine/drivefile"
+	"leadline/engine/study/results"
 	"leadline/engine/study/score"
 	"leadline/network/roadfile"
 	leadlinev1 "leadline/proto/leadline/v1"
@@ -146,7 +147,7 @@ func (r *rehearsal) replay(s *rehearsed) error {
 	if err := json.Unmarshal(text, s.Score); err != nil {
 		return fmt.Errorf("what replay printed: %w", err)
 	}
-	s.Results = r.path(filepath.Join(setting, s.Drive))
+	s.Results = r.path(filepath.Join(results.Given, s.Drive))
 	s.Picture = filepath.Join(s.Results, "track.png")
 	s.Missed = append([]string{}, s.missed(s.Score)...)
 	r.say("   located   %s\n", locatedText(s.Score))

@@ -3,30 +3,27 @@ package main
 import (
 	"bufio"
 	"bytes"
+	"context"
 	"errors"
 	"fmt"
 	"io"
 	"io/fs"
 	"os"
+	"os/signal"
 	"path/filepath"
 	"strings"
+	"syscall"
 	"time"
 
 	"github.com/spf13/cobra"
 
 	"leadline/engine/drivefile"
-	"leadline/engine/sensor"
-	"leadline/engine/session"
-	"leadline/engine/study/diagnose"
-	"leadline/engine/study/replay"
+	"leadline/engine/study/results"
 	"leadline/engine/study/score"
-	"leadline/engine/study/track"
+	"leadline/engine/study/sweep"
 	"leadline/network/roadfile"
 	"leadline/terrain/heightfile"
 )
-
-// setting names the folder of results where nothing is varied.
-const setting = "given"
 
 type replayOptions struct {
 	mapPath, suite, dir string
@@ -35,6 +32,14 @@ type replayOptions struct {
 	maxCells            int
 	diagnose, explain   string
 	explainWithin       time.Duration
+
+	set, holdOut  []string
+	settings      string
+	parallel      int
+	again         bool
+	truthOffset   []float64
+	estimateTruth bool
+	holdOutFixes  bool
 }
 
 func replayCommand() *cobra.Command {
@@ -42,19 +47,31 @@ func replayCommand() *cobra.Command {
 	c := &cobra.Command{
 		Use:   "replay DRIVE... --map MAP",
 		Short: "Run recorded drives and compare them with the truth they hold",
-		Args:  cobra.MinimumNArgs(1),
-		RunE:  func(c *cobra.Command, args []string) error { return replayDrives(c, o, args) },
+		Long: `Replay runs recorded drives through the filter and compares them with the truth
+they hold. Several run at a time; results do not depend on how many. With --set or
+--settings it runs each drive with each of several settings. An interrupt keeps
+what is done; the same command goes on from there.`,
+		Args: cobra.MinimumNArgs(1),
+		RunE: func(c *cobra.Command, args []string) error { return replayDrives(c, o, args) },
 	}
 	f := c.Flags()
 	f.StringVar(&o.mapPath, "map", "", "compiled map; without it the map that the drive's header names, beside the drive")
 	f.StringVar(&o.suite, "suite", "", "suite file or starter name, in place of the one that the drive's header names")
-	f.StringVar(&o.dir, "out", "", "write DIR/"+setting+"/DRIVE/{track.csv, track.geojson, track.png, score.json, timing.json}")
-	f.BoolVar(&o.asJSON, "json", false, "print the scores as JSON, one object a line")
+	f.StringVar(&o.dir, "out", "", "write DIR/SETTING/DRIVE/{track.csv, track.geojson, track.png, score.json, timing.json, run.json}; SETTING is "+results.Given+" where nothing is varied")
+	f.BoolVar(&o.asJSON, "json", false, "print the scores as JSON, one object a line; of a sweep the summary")
 	f.BoolVar(&o.allowRefused, "allow-refused", false, "exit with status 0 although measurements were refused")
 	f.StringVar(&o.diagnose, "diagnose", diagnoseAuto, "try the opening again with each usual mistake undone: always, never, or auto, when the run is suspect")
 	f.StringVar(&o.explain, "explain", "", "say which measurement moved the belief how much around this time: RFC 3339, or seconds after the first measurement")
 	f.DurationVar(&o.explainWithin, "explain-within", 2*time.Second, "how far around that time")
 	f.IntVar(&o.maxCells, "max-cells", defaultCells, "greatest number of cells of a belief; decides how finely a wide start is searched")
+	f.StringArrayVar(&o.set, "set", nil, "KEY=VALUE of the suite, or session.max_cells=N; repeat. A key with several values has each combination run")
+	f.StringVar(&o.settings, "settings", "", "YAML file of settings to run: vary, settings, hold_out")
+	f.StringArrayVar(&o.holdOut, "hold-out", nil, "sum up the drives of this name, * for any part of it, on their own; repeat")
+	f.IntVar(&o.parallel, "parallel", 0, "how many run at a time; 0 is as many as there are processors")
+	f.BoolVar(&o.again, "again", false, "run again what --out holds already")
+	f.Float64SliceVar(&o.truthOffset, "truth-offset", nil, "where and when the truth is measured: FORWARD,RIGHT,LATE in metres from the vehicle's reference point and seconds")
+	f.BoolVar(&o.estimateTruth, "estimate-truth-offset", false, "say in the score what that might be; it is not taken off")
+	f.BoolVar(&o.holdOutFixes, "hold-out-fixes", false, "compare each satellite fix with what was known just before it")
 	settable(c, "max-cells")
 	return c
 }
@@ -66,174 +83,238 @@ func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
 	if err := o.checkStudies(); err != nil {
 		return err
 	}
-	names := map[string]string{}
-	for _, path := range paths {
-		name := driveName(path)
-		if other, ok := names[name]; ok && o.dir != "" {
-			return fmt.Errorf("%s and %s have one name, and so one folder under --out: rename one", other, path)
-		}
-		names[name] = path
-	}
 	maps := map[string]*mapFile{}
 	defer func() {
 		for _, m := range maps {
 			m.Close()
 		}
 	}()
-	var refused error
-	for _, path := range paths {
-		run, err := o.replay(c.ErrOrStderr(), maps, path)
-		if err != nil {
-			return err
-		}
-		if o.dir != "" {
-			if err := run.write(filepath.Join(o.dir, setting, driveName(path))); err != nil {
-				return err
-			}
-		}
-		if err := o.say(c, run, path); err != nil {
-			return err
-		}
-		if n := run.result.Refused; n > 0 && refused == nil && !o.allowRefused {
-			refused = fmt.Errorf("%s: %d of %d measurements were refused, first %w; with --allow-refused this is no error",
-				path, n, n+run.result.Accepted, run.result.Refusals[0])
-		}
-	}
-	return refused
-}
-
-// say prints a run's score and what its studies find. A person reads what is
-// known before the studies begin, which take longer than the replay.
-func (o *replayOptions) say(c *cobra.Command, run *driveRun, path string) error {
-	out := c.OutOrStdout()
-	why, err := look(run, path)
+	job, err := o.job(maps, paths)
 	if err != nil {
 		return err
 	}
-	if !o.asJSON {
-		if err := errors.Join(printScore(out, run.score, run.result), why.printFindings(out)); err != nil {
-			return err
+	varied := len(job.Settings) > 0
+	meter := newMeter(c.ErrOrStderr(), "replaying")
+	defer meter.end()
+	job.Meter = meter
+	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
+	defer stop()
+	var failed []error
+	sum, err := job.Run(ctx, func(out *sweep.Outcome) error {
+		meter.end()
+		defer meter.resume()
+		if out.Err != nil && !errors.Is(out.Err, context.Canceled) {
+			failed = append(failed, out.Err)
 		}
-	}
-	if err := o.study(c.ErrOrStderr(), why, run, path); err != nil {
+		if out.Score == nil {
+			return nil
+		}
+		if n := out.Run.Refused; n > 0 && !o.allowRefused {
+			failed = append(failed, fmt.Errorf("%s: %d of %d measurements were refused, first %s; with --allow-refused this is no error",
+				out.Drive.Path, n, n+out.Run.Accepted, out.Run.FirstRefusal))
+		}
+		if varied {
+			return nil
+		}
+		return o.say(ctx, c, maps[out.Drive.Map.Path], out)
+	})
+	meter.end()
+	if err != nil {
 		return err
 	}
-	if o.asJSON {
-		return printJSONLine(out, struct {
-			*score.Score
-			*studies
-		}{run.score, why})
+	switch {
+	case varied && o.asJSON:
+		err = printJSON(c.OutOrStdout(), sum)
+	case varied:
+		err = printSweep(c.OutOrStdout(), sum)
 	}
-	return why.print(out)
+	if ctx.Err() != nil {
+		kept := "nothing was kept: give --out"
+		if o.dir != "" {
+			kept = fmt.Sprintf("what is done is in %s, and the same command goes on from there", o.dir)
+		}
+		failed = append(failed, failure{fmt.Errorf("interrupted after %d of %d runs: %s", sum.Runs-sum.CutShort, max(1, len(job.Settings))*len(paths), kept)})
+	}
+	if err == nil && len(failed) > 0 {
+		if err = failed[0]; len(failed) > 1 {
+			err = fmt.Errorf("%w (and %d more runs)", err, len(failed)-1)
+		}
+	}
+	return err
 }
 
-// driveRun is a drive that was replayed.
-type driveRun struct {
-	m      *mapFile
-	track  *track.Track
-	score  *score.Score
-	result *replay.Result
-	// What it was made of, for studies.
-	drive  *drivefile.Drive
-	config session.Config
-	record *diagnose.Record
+// job is what is to be run; the maps that it opens go into maps.
+func (o *replayOptions) job(maps map[string]*mapFile, paths []string) (*sweep.Job, error) {
+	job := &sweep.Job{
+		HoldOut: o.holdOut, MaxCells: o.maxCells, Dir: o.dir, Parallel: o.parallel,
+		Again:         o.again || o.explain != "" || o.diagnose == diagnoseAlways,
+		EstimateTruth: o.estimateTruth, HoldOutFixes: o.holdOutFixes,
+		Version: versionText(), Program: programSHA256(), Command: append([]string{"leadline"}, os.Args[1:]...),
+	}
+	switch n := len(o.truthOffset); {
+	case n == 3:
+		job.TruthOffset = score.Offset{ForwardM: o.truthOffset[0], RightM: o.truthOffset[1], LateS: o.truthOffset[2]}
+	case n > 0:
+		return nil, fmt.Errorf("--truth-offset has %d numbers: give three, FORWARD,RIGHT,LATE", n)
+	}
+	if o.parallel < 0 {
+		return nil, fmt.Errorf("--parallel is %d: give a whole number, 0 or more", o.parallel)
+	}
+	if err := o.vary(job); err != nil {
+		return nil, err
+	}
+	job.Keep = len(job.Settings) == 0
+	opened := map[string]*sweep.Map{}
+	for _, path := range paths {
+		d, err := o.drive(maps, opened, path)
+		if err != nil {
+			return nil, err
+		}
+		job.Drives = append(job.Drives, *d)
+	}
+	return job, nil
 }
 
-func (o *replayOptions) replay(errs io.Writer, maps map[string]*mapFile, path string) (*driveRun, error) {
-	d, err := readDrive(path)
+// vary adds the settings that the flags or a file ask for.
+func (o *replayOptions) vary(job *sweep.Job) error {
+	if o.settings != "" {
+		if len(o.set) > 0 {
+			return errors.New("--set and --settings both say what to vary: give one of them")
+		}
+		text, err := readYAML("--settings", o.settings)
+		if err != nil {
+			return err
+		}
+		plan, err := sweep.ParsePlan(o.settings, text)
+		if err != nil {
+			return err
+		}
+		if len(plan.Settings) == 0 {
+			return fmt.Errorf("settings %s: it has no settings: give vary or settings", o.settings)
+		}
+		job.Settings, job.HoldOut = plan.Settings, append(job.HoldOut, plan.HoldOut...)
+		return nil
+	}
+	var changes []sweep.Change
+	for _, text := range o.set {
+		change, err := sweep.ParseChange(text)
+		if err != nil {
+			return fmt.Errorf("--set: %w", err)
+		}
+		changes = append(changes, change)
+	}
+	if len(changes) == 0 {
+		return nil
+	}
+	var err error
+	if job.Settings, err = sweep.Combine(changes); err != nil {
+		return fmt.Errorf("--set: %w", err)
+	}
+	return nil
+}
+
+// drive looks at a drive file and opens its map.
+func (o *replayOptions) drive(maps map[string]*mapFile, opened map[string]*sweep.Map, path string) (*sweep.Drive, error) {
+	header, bytes, err := driveHeader(path)
 	if err != nil {
 		return nil, err
 	}
 	mapPath := o.mapPath
 	if mapPath == "" {
-		if mapPath, err = headerMap(d.Header.Map, path); err != nil {
+		if mapPath, err = headerMap(header.Map, path); err != nil {
 			return nil, err
 		}
 	}
-	m := maps[mapPath]
-	if m == nil {
-		if m, err = openMap(mapPath); err != nil {
+	if opened[mapPath] == nil {
+		m, err := openMap(mapPath)
+		if err != nil {
 			return nil, err
 		}
-		maps[mapPath] = m
+		maps[mapPath], opened[mapPath] = m, m.forStudies()
 	}
-	suite, err := driveSuite(o.suite, d.Header.Suite, path)
+	suite, err := driveSuite(o.suite, header.Suite, path)
 	if err != nil {
 		return nil, err
 	}
-	show, end := progress(errs, driveName(path))
-	config := session.Config{Space: m.Space, Names: m.Names, Suite: suite, MaxCells: o.maxCells}
-	var record diagnose.Record
-	res, err := replay.Run(d, config, replay.Options{Progress: show, Watch: record.Add})
-	end()
-	if err != nil {
-		return nil, fmt.Errorf("%s: %w", path, err)
+	name := o.suite
+	if name == "" {
+		name = header.Suite
 	}
-	truth := replay.Truth(d)
-	s, err := score.Of(score.Input{
-		Drive: driveName(path), Version: versionText(), Posteriors: res.Posteriors, SHA256: res.Hash,
-		StartNS: int64(res.Start), Truth: truth, Roads: m.near(),
-	})
-	if err != nil {
-		return nil, fmt.Errorf("%s: comparing with the truth: %w", path, err)
-	}
-	return &driveRun{
-		m, &track.Track{Drive: driveName(path), Posteriors: res.Posteriors, Truth: truth}, s, res,
-		d, config, &record,
-	}, nil
+	return &sweep.Drive{Path: path, Name: driveName(path), Bytes: bytes, Map: opened[mapPath], Suite: suite, SuiteName: name}, nil
 }
 
-// write writes a run's files into a folder.
-func (r *driveRun) write(dir string) error {
-	if err := os.MkdirAll(dir, 0o755); err != nil {
-		return fmt.Errorf("--out: %w", err)
-	}
-	for name, write := range map[string]func(io.Writer) error{
-		"track.csv":     r.track.WriteCSV,
-		"track.geojson": r.track.WriteGeoJSON,
-		"score.json":    func(w io.Writer) error { return printJSON(w, r.score) },
-		"timing.json":   func(w io.Writer) error { return printJSON(w, r.result.Timing) },
-		"track.png":     r.picture,
-	} {
-		if err := writeFile(filepath.Join(dir, name), write); err != nil {
+// say prints a run's score and what its studies find. A person reads what is
+// known before the studies begin, which take longer than the replay.
+func (o *replayOptions) say(ctx context.Context, c *cobra.Command, m *mapFile, run *sweep.Outcome) error {
+	out := c.OutOrStdout()
+	why := &studies{}
+	if run.Kept != nil {
+		var err error
+		if why, err = look(run.Kept, run.Drive.Path); err != nil {
 			return err
 		}
 	}
-	return nil
+	if !o.asJSON {
+		if err := errors.Join(printScore(out, run), why.printFindings(out)); err != nil {
+			return err
+		}
+	}
+	if run.Kept != nil && ctx.Err() == nil {
+		if err := o.study(c.ErrOrStderr(), why, m, run.Kept, run.Drive.Path); err != nil {
+			return err
+		}
+	}
+	if o.asJSON {
+		return printJSONLine(out, struct {
+			*score.Score
+			*studies
+		}{run.Score, why})
+	}
+	return why.print(out)
 }
 
-func (r *driveRun) picture(w io.Writer) error {
-	return r.track.Picture(w, track.Ground{Frame: r.m.Space.Frame(), Roads: r.m.lines(), Relief: r.m.field(), Places: places(r.config.Suite)})
+// driveHeader reads a drive's header, and how long the file is.
+func driveHeader(path string) (drivefile.Header, int64, error) {
+	f, b, err := openDrive(path)
+	if err != nil {
+		return drivefile.Header{}, 0, err
+	}
+	defer f.Close()
+	info, err := f.Stat()
+	if err != nil {
+		return drivefile.Header{}, 0, err
+	}
+	rec, err := drivefile.NewReader(b, path).Read()
+	if err != nil {
+		return drivefile.Header{}, 0, err
+	}
+	return *rec.Header, info.Size(), nil
 }
 
-// places are a suite's posts and beacons.
-func places(s *sensor.Suite) (out []track.Place) {
-	if s == nil {
-		return nil
+// openDrive opens a drive file.
+func openDrive(path string) (*os.File, *bufio.Reader, error) {
+	f, err := os.Open(path)
+	if errors.Is(err, fs.ErrNotExist) {
+		return nil, nil, fmt.Errorf("there is no drive file %s: check the path", path)
 	}
-	for _, p := range s.Posts {
-		out = append(out, track.Place{Name: p.ID, At: p.Position()})
+	if err != nil {
+		return nil, nil, err
 	}
-	for _, b := range s.Beacons {
-		out = append(out, track.Place{Name: b.ID, At: b.Position()})
+	b := bufio.NewReader(f)
+	if err := startsAsDrive(b, path); err != nil {
+		f.Close()
+		return nil, nil, err
 	}
-	return out
+	return f, b, nil
 }
 
 // readDrive reads a drive file whole.
 func readDrive(path string) (*drivefile.Drive, error) {
-	f, err := os.Open(path)
-	if errors.Is(err, fs.ErrNotExist) {
-		return nil, fmt.Errorf("there is no drive file %s: check the path", path)
-	}
+	f, b, err := openDrive(path)
 	if err != nil {
 		return nil, err
 	}
 	defer f.Close()
-	b := bufio.NewReader(f)
-	if err := startsAsDrive(b, path); err != nil {
-		return nil, err
-	}
 	return drivefile.ReadAll(b, path)
 }
 

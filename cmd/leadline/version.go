@@ -1,7 +1,11 @@
 package main
 
 import (
+	"crypto/sha256"
+	"encoding/hex"
 	"fmt"
+	"io"
+	"os"
 	"runtime"
 	"runtime/debug"
 	"strings"
@@ -44,6 +48,24 @@ func thisBuild() build {
 		b.Version = "development"
 	}
 	return b
+}
+
+// programSHA256 sums up this program's file; "" if it cannot be read.
+func programSHA256() string {
+	path, err := os.Executable()
+	if err != nil {
+		return ""
+	}
+	f, err := os.Open(path)
+	if err != nil {
+		return ""
+	}
+	defer f.Close()
+	sum := sha256.New()
+	if _, err := io.Copy(sum, f); err != nil {
+		return ""
+	}
+	return hex.EncodeToString(sum.Sum(nil))
 }
 
 // versionText names the program's version and commit where that is not part of

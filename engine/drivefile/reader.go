@@ -37,6 +37,7 @@ type Reader struct {
 	buf    []byte // a line longer than r's own buffer
 	line   int
 	header *Header
+	truths bool  // pass over measurements
 	err    error // sticky
 }
 
@@ -44,6 +45,11 @@ type Reader struct {
 func NewReader(r io.Reader, name string) *Reader {
 	return &Reader{name: name, r: bufio.NewReader(r)}
 }
+
+// TruthsAlone has measurements passed over from here on, unread and unchecked:
+// some twenty times as fast. One whose line has an escape or says truth
+// somewhere is still given.
+func (r *Reader) TruthsAlone() { r.truths = true }
 
 // Read returns the next record, io.EOF after the last one, and otherwise an
 // *Error, after which it returns the same again. A file without a header is
@@ -76,6 +82,9 @@ func (r *Reader) read() (*Record, error) {
 			return nil, err
 		}
 		if len(bytes.TrimSpace(line)) == 0 {
+			continue
+		}
+		if r.truths && r.header != nil && !bytes.Contains(line, []byte("truth")) && bytes.IndexByte(line, '\\') < 0 {
 			continue
 		}
 		m := &leadlinev1.DriveRecord{}
@@ -183,7 +192,8 @@ func plain(err error) error {
 // 10 Hz, about 2 GB.
 const MaxRecords = 10_000_000
 
-// ReadAll reads a whole drive: its header with its time, its measurements and its truths in the order of the file.
+// ReadAll reads a whole drive: its header with its time, its measurements and its
+// truths in the order of the file. Beside an error it returns what came before.
 func ReadAll(rd io.Reader, name string) (*Drive, error) {
 	r := NewReader(rd, name)
 	d := &Drive{}
@@ -196,7 +206,7 @@ func ReadAll(rd io.Reader, name string) (*Drive, error) {
 		case errors.Is(err, io.EOF):
 			return d, nil
 		case err != nil:
-			return nil, err
+			return d, err
 		case rec.Header != nil:
 			d.Header, d.Time = *rec.Header, rec.Time
 		case rec.Event != nil:

@@ -64,6 +64,9 @@ func sameAnswer(a, b *summary.Posterior) bool {
 func (s *Session) finish(n int) {
 	for ; s.final < n; s.final++ {
 		s.hasher.Add(s.recent[s.final])
+		if s.finals != nil {
+			s.finals(s.recent[s.final])
+		}
 	}
 	if drop := s.final - 1; drop > 256 {
 		s.recent = slices.Delete(s.recent, 0, drop)

@@ -176,6 +176,7 @@ type Session struct {
 	pressed   bool // do not wait: see relieve
 	widest    int  // the most cells since shed
 	watch     func(Change)
+	finals    func(*summary.Posterior)
 }
 
 // New starts a session. An error says what is wrong with the configuration.

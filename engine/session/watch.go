@@ -27,11 +27,27 @@ type Change struct {
 	Cells int
 }
 
+// Rewinds reports whether the session went back before a change, last being the
+// time of the change before it, and until when what was seen still holds. It
+// goes back to a time and moves on from there; or to before its first time,
+// where it weighs without having moved.
+func (c Change) Rewinds(last sensor.Time) (until sensor.Time, yes bool) {
+	if c.Likelihood == nil {
+		return c.From, c.From < last
+	}
+	return c.Time - 1, c.Time < last
+}
+
 // Watch has f called after each move and each weighing of the belief, as they
 // happen: for studies. f may read the belief (ReadBelief, Size) and must do
 // nothing else with the session. What a late event has computed again is seen
 // again.
 func (s *Session) Watch(f func(Change)) { s.watch = f }
+
+// Finals has f called with each posterior once no event can change it any more,
+// in the order of their times: those that the hash is over, for who keeps or
+// writes a run of any length. f may keep a posterior and must not change it.
+func (s *Session) Finals(f func(*summary.Posterior)) { s.finals = f }
 
 // Summarize makes the posterior of the present belief, for who watches it, and
 // changes nothing else.

@@ -163,7 +163,7 @@ func (w *witness) look() (*look, error) {
 // the place of what was.
 func (w *witness) see(c session.Change) {
 	n := len(w.effects)
-	if until, yes := rewound(c, w.last); yes {
+	if until, yes := c.Rewinds(w.last); yes {
 		for n > 0 && w.effects[n-1].when > until {
 			n--
 		}

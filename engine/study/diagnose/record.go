@@ -88,7 +88,7 @@ func (r *Record) Add(c session.Change) {
 
 // rewind forgets what the session computes again from here on.
 func (r *Record) rewind(c session.Change) {
-	if until, yes := rewound(c, r.last); yes {
+	if until, yes := c.Rewinds(r.last); yes {
 		n := len(r.list)
 		for n > 0 && r.list[n-1].time > until {
 			n--
@@ -96,17 +96,6 @@ func (r *Record) rewind(c session.Change) {
 		r.list = r.list[:n]
 	}
 	r.last = c.Time
-}
-
-// rewound reports whether a session went back before a change, last being the
-// time of the one before, and until when what was seen still holds. It goes
-// back to a time and moves on from there; or to before its first time, where
-// it weighs without having moved.
-func rewound(c session.Change, last sensor.Time) (until sensor.Time, yes bool) {
-	if c.Likelihood == nil {
-		return c.From, c.From < last
-	}
-	return c.Time - 1, c.Time < last
 }
 
 // voice finds or adds who spoke.

@@ -5,7 +5,6 @@ import (
 	"cmp"
 	"errors"
 	"fmt"
-	"math"
 	"slices"
 	"time"
 
@@ -75,6 +74,12 @@ type Options struct {
 	Progress func(done, total int)
 	// Watch, if set, watches the session.
 	Watch func(session.Change)
+	// BeforeFix, if set, is given each satellite fix with the posterior just
+	// before it; see Stream.
+	BeforeFix func(ev sensor.Event, before *summary.Posterior)
+	// Stop, if set, is asked now and then; an error of it ends the run, and Run
+	// returns what came before beside it.
+	Stop func() error
 }
 
 // Run makes a session of c, with the drive's vehicle and start, and runs the
@@ -89,45 +94,31 @@ func Run(d *drivefile.Drive, c session.Config, o Options) (*Result, error) {
 	if len(d.Events) == 0 {
 		return nil, ErrNoMeasurements
 	}
-	c.Vehicle, c.Start = d.Header.Vehicle, Start(d.Header.Start)
-	began := time.Now()
-	s, err := session.New(c)
+	r, err := start(d.Header, c, o.Watch, o.BeforeFix)
 	if err != nil {
 		return nil, err
 	}
-	if o.Watch != nil {
-		s.Watch(o.Watch)
-	}
-	r := &Result{}
+	r.s.Finals(func(p *summary.Posterior) { r.Posteriors = append(r.Posteriors, p) })
 	events := Ordered(d.Events)
-	r.Start = begins(events)
-	r.Timing.OpenS = time.Since(began).Seconds()
-	took := make([]float64, 0, len(events))
-	began = time.Now()
-	last := began
+	var stopped error
 	for i, ev := range events {
-		ps, err := s.Add(ev)
-		if err != nil {
-			if err := r.refuse(ev, err); err != nil {
-				return nil, err
+		if o.Stop != nil && i > 0 && i%64 == 0 {
+			if stopped = o.Stop(); stopped != nil {
+				break
 			}
 		}
-		r.take(ps, s.Withdrawn())
-		now := time.Now()
-		took = append(took, now.Sub(last).Seconds()*1e3)
-		last = now
+		if err := r.add(ev); err != nil {
+			return nil, err
+		}
 		if o.Progress != nil && (i+1)%32 == 0 {
 			o.Progress(i+1, len(events))
 		}
 	}
-	r.take(s.Flush(), s.Withdrawn())
-	r.Accepted, r.Refused = s.Counts()
-	r.Hash = s.Hash()
-	r.time(time.Since(began).Seconds(), took, events)
-	if o.Progress != nil {
+	res := r.end()
+	if o.Progress != nil && stopped == nil {
 		o.Progress(len(events), len(events))
 	}
-	return r, nil
+	return res, stopped
 }
 
 // Ordered returns the events in the order of events; equal ones keep theirs.
@@ -146,71 +137,6 @@ func Start(s drivefile.Start) session.Start {
 		return session.Start{Kind: session.InArea, Area: s.Area}
 	}
 	return session.Start{Kind: session.Anywhere}
-}
-
-// begins returns when the first measurement or its increment began.
-func begins(events []sensor.Event) sensor.Time {
-	t := events[0].Time
-	for _, ev := range events {
-		if since, ok := sensor.Since(ev.Measurement); ok {
-			t = min(t, since)
-		}
-	}
-	return t
-}
-
-// refuse keeps a refusal; any other error comes back.
-func (r *Result) refuse(ev sensor.Event, err error) error {
-	var ref *session.Refusal
-	if !errors.As(err, &ref) {
-		return err
-	}
-	if len(r.Refusals) < MaxRefusals {
-		r.Refusals = append(r.Refusals, Refusal{ev.Time, ev.Sensor, ev.Number, ref.Reason, ref.Detail})
-	}
-	return nil
-}
-
-// take puts posteriors at their places by time, in place of what they revise,
-// and drops those that are withdrawn.
-func (r *Result) take(ps []*summary.Posterior, withdrawn []sensor.Time) {
-	for _, t := range withdrawn {
-		if i, found := r.find(int64(t)); found {
-			r.Posteriors = slices.Delete(r.Posteriors, i, i+1)
-		}
-	}
-	for _, p := range ps {
-		n := len(r.Posteriors)
-		if n == 0 || r.Posteriors[n-1].TimeNS < p.TimeNS {
-			r.Posteriors = append(r.Posteriors, p)
-			continue
-		}
-		i, found := r.find(p.TimeNS)
-		if found {
-			r.Posteriors[i] = p
-		} else {
-			r.Posteriors = slices.Insert(r.Posteriors, i, p)
-		}
-	}
-}
-
-func (r *Result) find(ns int64) (int, bool) {
-	return slices.BinarySearchFunc(r.Posteriors, ns, func(p *summary.Posterior, ns int64) int { return cmp.Compare(p.TimeNS, ns) })
-}
-
-func (r *Result) time(filterS float64, tookMs []float64, events []sensor.Event) {
-	slices.Sort(tookMs)
-	n := len(events)
-	at := func(p float64) float64 { return tookMs[max(0, min(n-1, int(math.Ceil(p*float64(n)))-1))] }
-	t := &r.Timing
-	t.Measurements, t.Posteriors = n, len(r.Posteriors)
-	t.DriveS = events[n-1].Time.Seconds(r.Start)
-	t.FilterS = filterS
-	if filterS > 0 { // a clock may not have moved
-		t.MeasurementsPerSecond = float64(n) / filterS
-		t.TimesRealTime = t.DriveS / filterS
-	}
-	t.P50Ms, t.P99Ms, t.MaxMs = at(0.5), at(0.99), tookMs[n-1]
 }
 
 // Truth returns a drive's truths for scoring: those of its vehicle or of no

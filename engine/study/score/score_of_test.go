@@ -211,13 +211,18 @@ func TestJSON(t *testing.T) {
 	}
 	always := "drive posteriors log_evidence posterior_sha256 version architecture scored scored_all"
 	figures := "rmse_m mean_m p50_m p68_m p95_m p99_9_m max_m anees anees_low anees_high coverage50 coverage95 coverage99 right_road_fraction beyond_protection"
+	details := "p75_m along_mean_m along_rmse_m along_p95_m across_mean_m across_rmse_m across_p95_m independent log_score crps_m rank_along rank_across longest_wrong protection truth"
+	if v, ok := m["sensors"].([]any); !ok || len(v) > 0 {
+		t.Errorf("sensors is %v, want none", m["sensors"])
+	}
+	delete(m, "sensors")
 	for name := range strings.FieldsSeq(always) {
 		if v, ok := m[name]; !ok || v == nil {
 			t.Errorf("%s is missing or null", name)
 		}
 		delete(m, name)
 	}
-	for name := range strings.FieldsSeq(figures + " " + strings.ReplaceAll(figures, " ", "_all ") + "_all located_after_s located_after_m") {
+	for name := range strings.FieldsSeq(figures + " " + strings.ReplaceAll(figures, " ", "_all ") + "_all located_after_s located_after_m " + details) {
 		if v, ok := m[name]; !ok || v != nil {
 			t.Errorf("%s is %v, want null", name, v)
 		}

@@ -49,7 +49,13 @@ func (t *Track) Picture(w io.Writer, g Ground) error {
 	var circles []plotter.XYs
 	var search plotter.XYs
 	was := false
-	every := max(1, t.count(summary.Located)/mostCircles)
+	kept := 0
+	for _, p := range t.Posteriors {
+		if p.Status == summary.Located {
+			kept++
+		}
+	}
+	every := max(1, kept/mostCircles)
 	n, drawn := 0, geo.Point{E: math.Inf(1)} // where the last circle is
 	for _, p := range t.Posteriors {
 		if p.Status != summary.Located {
@@ -232,19 +238,10 @@ func style(p *plot.Plot) {
 // title says what the picture shows.
 func (t *Track) title() string {
 	title := t.Drive
-	if n := len(t.Posteriors); n > 0 {
-		title += fmt.Sprintf(": located in %d of %d posteriors", t.count(summary.Located), n)
+	if t.All > 0 {
+		title += fmt.Sprintf(": located in %d of %d posteriors", t.Located, t.All)
 	}
 	return title
-}
-
-func (t *Track) count(s summary.Status) (n int) {
-	for _, p := range t.Posteriors {
-		if p.Status == s {
-			n++
-		}
-	}
-	return n
 }
 
 // circle is a polygon of 48 corners: within 0.3 % of the radius.

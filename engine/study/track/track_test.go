@@ -6,6 +6,7 @@ import (
 	"encoding/json"
 	"image/color"
 	"image/png"
+	"io"
 	"math"
 	"strconv"
 	"strings"
@@ -17,6 +18,57 @@ import (
 )
 
 var frame = geo.NewFrame(geo.FromDegrees(-30, 45)) // in the open Atlantic
+
+// written is what a writer makes of a track.
+func written(t *testing.T, tr *Track, begin func(w io.Writer) (Writer, error)) []byte {
+	t.Helper()
+	var b bytes.Buffer
+	w, err := begin(&b)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, p := range tr.Posteriors {
+		s := Step{Posterior: p}
+		if s.Truth, s.Known = score.Interpolate(tr.Truth, p.TimeNS); s.Known {
+			if s.ErrorM, _, err = geo.WGS84.Distance(Scored(p), s.Truth.At); err != nil {
+				t.Fatal(err)
+			}
+		}
+		if err := w.Add(s); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if err := w.Close(); err != nil {
+		t.Fatal(err)
+	}
+	return b.Bytes()
+}
+
+func table(w io.Writer) (Writer, error) { return NewTable(w) }
+
+func features(tr *Track) func(io.Writer) (Writer, error) {
+	return func(w io.Writer) (Writer, error) { return NewFeatures(w, tr.Drive, tr.Truth) }
+}
+
+// TestThinned: a long track keeps each second posterior, or each fourth, evenly.
+func TestThinned(t *testing.T) {
+	var tr Track
+	const n = 3*mostKept + 7
+	for i := range n {
+		s := Step{Posterior: &summary.Posterior{TimeNS: int64(i), Status: summary.Located}}
+		if err := tr.Add(s); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if k := len(tr.Posteriors); k > mostKept || k < mostKept/2 || tr.All != n || tr.Located != n {
+		t.Fatalf("%d of %d, %d located", k, tr.All, tr.Located)
+	}
+	for i, p := range tr.Posteriors {
+		if p.TimeNS != int64(4*i) {
+			t.Fatalf("posterior %d is number %d", i, p.TimeNS)
+		}
+	}
+}
 
 // walk is five posteriors, the first two not located, 100 m apart going east,
 // the truth 3 m north of the means.
@@ -47,11 +99,7 @@ func walk() *Track {
 
 // TestCSV reads the table back.
 func TestCSV(t *testing.T) {
-	var b bytes.Buffer
-	if err := walk().WriteCSV(&b); err != nil {
-		t.Fatal(err)
-	}
-	rows, err := csv.NewReader(&b).ReadAll()
+	rows, err := csv.NewReader(bytes.NewReader(written(t, walk(), table))).ReadAll()
 	if err != nil || len(rows) != 6 {
 		t.Fatalf("%v, %d rows", err, len(rows))
 	}
@@ -92,10 +140,6 @@ func TestCSV(t *testing.T) {
 
 // TestGeoJSON parses it: a line of truth, one for each status, and the points.
 func TestGeoJSON(t *testing.T) {
-	var b bytes.Buffer
-	if err := walk().WriteGeoJSON(&b); err != nil {
-		t.Fatal(err)
-	}
 	var c struct {
 		Type     string
 		Features []struct {
@@ -107,25 +151,25 @@ func TestGeoJSON(t *testing.T) {
 			}
 		}
 	}
-	if err := json.Unmarshal(b.Bytes(), &c); err != nil {
+	if err := json.Unmarshal(written(t, walk(), features(walk())), &c); err != nil {
 		t.Fatal(err)
 	}
 	var got []string
 	for _, f := range c.Features {
 		got = append(got, f.Geometry.Type)
 	}
-	if want := "LineString LineString LineString Point Point Point Point Point"; c.Type != "FeatureCollection" || strings.Join(got, " ") != want {
+	if want := "LineString Point Point LineString Point Point Point LineString"; c.Type != "FeatureCollection" || strings.Join(got, " ") != want {
 		t.Errorf("%s of %v", c.Type, got)
 	}
-	if f := c.Features[2]; f.Properties["status"] != "located" {
+	if f := c.Features[7]; f.Properties["status"] != "located" {
 		t.Errorf("%v", f.Properties)
 	}
 	var at [2]float64
-	if err := json.Unmarshal(c.Features[3].Geometry.Coordinates, &at); err != nil || math.Abs(at[0]+30) > 1e-8 || math.Abs(at[1]-45) > 0.001 {
+	if err := json.Unmarshal(c.Features[1].Geometry.Coordinates, &at); err != nil || math.Abs(at[0]+30) > 1e-8 || math.Abs(at[1]-45) > 0.001 {
 		t.Errorf("%v, %v", at, err)
 	}
-	if err := (&Track{}).WriteGeoJSON(&b); err != nil {
-		t.Error(err)
+	if got := written(t, &Track{}, features(&Track{})); !json.Valid(got) {
+		t.Errorf("of nothing: %s", got)
 	}
 }
 

@@ -1,0 +1,95 @@
+package score
+
+// Details are what a score says beyond its figures, from the first located
+// posterior on.
+type Details struct {
+	// P75M, with p50_m and p95_m, are the percentiles in which EN 16803-1 states
+	// horizontal accuracy (from memory).
+	P75M *float64 `json:"p75_m"`
+	// Along and across the truth's direction of motion, while it moves: of the
+	// scored position, forward and right positive.
+	AlongMeanM  *float64 `json:"along_mean_m"`
+	AlongRMSEM  *float64 `json:"along_rmse_m"`
+	AlongP95M   *float64 `json:"along_p95_m"` // of the absolute value
+	AcrossMeanM *float64 `json:"across_mean_m"`
+	AcrossRMSEM *float64 `json:"across_rmse_m"`
+	AcrossP95M  *float64 `json:"across_p95_m"`
+	// Independent is how many independent errors the scored ones are worth: as
+	// many as would have the same variance of their mean (Geyer's initial
+	// positive sequence).
+	Independent *float64 `json:"independent"`
+	// LogScore is the mean of -ln of the posterior's density at the truth, nats
+	// relative to one square metre; CRPSM the mean of the continuous ranked
+	// probability score along and across, metres. Both are of the mixture of the
+	// posterior's modes, with the truth's own variance added. Smaller is better,
+	// and no posterior does better in the mean than the right one (Gneiting &
+	// Raftery, 2007).
+	LogScore *float64 `json:"log_score"`
+	CRPSM    *float64 `json:"crps_m"`
+	// RankAlong and RankAcross count in which twentieth of the posterior the
+	// truth fell, along and across, the rearmost and leftmost first: flat if it is
+	// right, heaped at the ends if it is too sure, in the middle if it is not sure
+	// enough, sloping if it is biased.
+	RankAlong  []int `json:"rank_along"`
+	RankAcross []int `json:"rank_across"`
+	// LongestWrong is the longest stretch that says located with the truth
+	// outside the 99 % radius and the truth's own 95 %; null if there is none.
+	LongestWrong *Stretch `json:"longest_wrong"`
+	// Protection is how often the truth was outside the protection radius.
+	Protection *Exceedance `json:"protection"`
+	// TruthNote says what the truth itself is worth.
+	TruthNote *TruthNote `json:"truth"`
+	// HeldOutFixes compares satellite fixes with what was known without them.
+	HeldOutFixes *HeldOut `json:"held_out_fixes,omitempty"`
+	// Sensors say how the measurements of each sensor fell in what was expected.
+	Sensors []Innovation `json:"sensors"`
+}
+
+// Stretch is a part of a drive.
+type Stretch struct {
+	StartS float64 `json:"start_s"` // after the drive's start
+	ForS   float64 `json:"for_s"`
+	ForM   float64 `json:"for_m"` // by the truth
+}
+
+// Exceedance counts truths outside of a bounded protection radius.
+type Exceedance struct {
+	Bounded  int `json:"bounded"` // posteriors that have one
+	Beyond   int `json:"beyond"`
+	Episodes int `json:"episodes"` // of consecutive ones
+	// Share is beyond over bounded; Low and High hold its true value with 95 %
+	// (Clopper & Pearson, Biometrika 26, 1934), for as many trials as the errors
+	// are independent. Risk is the largest that was asked for.
+	Share *float64 `json:"share"`
+	Low   *float64 `json:"share_low"`
+	High  *float64 `json:"share_high"`
+	Risk  float64  `json:"risk"`
+}
+
+// TruthNote says what a truth is worth.
+type TruthNote struct {
+	// SigmaM is the root mean square of the truths' standard deviations, P50M and
+	// P95M what errors would be of a position that is exact.
+	SigmaM float64 `json:"sigma_m"`
+	P50M   float64 `json:"truth_p50_m"`
+	P95M   float64 `json:"truth_p95_m"`
+	// Offset is what was stated and taken off.
+	Offset
+	// Below names the figures that are smaller than the truth's own error:
+	// nothing is claimed by them.
+	Below []string `json:"below_truth"`
+	// Estimate is what may remain, where it was asked for. It is not taken off.
+	Estimate *Estimate `json:"estimate,omitempty"`
+}
+
+// HeldOut compares satellite fixes with the posterior just before each. Errors
+// are from the scored position to the fix, whose own error is in them.
+type HeldOut struct {
+	Fixes   int      `json:"fixes"`
+	RMSEM   *float64 `json:"fix_rmse_m"`
+	P50M    *float64 `json:"fix_p50_m"`
+	P95M    *float64 `json:"fix_p95_m"`
+	ANEES   *float64 `json:"fix_anees"` // with the fix's own variance; 2 is exact
+	SigmaM  *float64 `json:"fix_sigma_m"`
+	Outside *float64 `json:"fix_outside95"` // share of fixes outside of what 95 % should be in
+}
