@@ -248,6 +248,9 @@ func (o *replayOptions) drive(maps map[string]*mapFile, opened map[string]*sweep
 func (o *replayOptions) say(ctx context.Context, c *cobra.Command, m *mapFile, run *sweep.Outcome) error {
 	out := c.OutOrStdout()
 	why := &studies{}
+	if ctx.Err() != nil {
+		run.Kept = nil // what was cut short is no drive to look at
+	}
 	if run.Kept != nil {
 		var err error
 		if why, err = look(run.Kept, run.Drive.Path); err != nil {
@@ -259,7 +262,7 @@ func (o *replayOptions) say(ctx context.Context, c *cobra.Command, m *mapFile, r
 			return err
 		}
 	}
-	if run.Kept != nil && ctx.Err() == nil {
+	if run.Kept != nil {
 		if err := o.study(c.ErrOrStderr(), why, m, run.Kept, run.Drive.Path); err != nil {
 			return err
 		}

@@ -12,10 +12,9 @@ import (
 // Scorer scores a drive as its posteriors come. It keeps some 30 bytes of each.
 // One goroutine owns it.
 type Scorer struct {
-	score      Score
-	roads      func(geo.LonLat, float64) []Road
-	truths     truths
-	estimating bool
+	score  Score
+	roads  func(geo.LonLat, float64) []Road
+	truths truths
 
 	lastNS, firstNS int64 // of all, and the first located
 	n               int
