@@ -13,8 +13,11 @@ import (
 // all.
 const shownMistakes = 10
 
-// printFindings prints what speaks for a mistake.
+// printFindings prints what speaks for a mistake; nothing where nobody looked.
 func (s *studies) printFindings(w io.Writer) error {
+	if s.Findings == nil {
+		return nil
+	}
 	var b strings.Builder
 	for _, r := range s.Findings.Reasons {
 		fmt.Fprintf(&b, "  %-12s %s\n", "suspect", r)
