@@ -32,6 +32,7 @@ type serveOptions struct {
 	drainTimeout        time.Duration
 	logFormat, logLevel choice
 	printConfig         bool
+	keep                keepOptions
 }
 
 func serveCommand() *cobra.Command { return new(serveOptions).command() }
@@ -47,7 +48,9 @@ stops it at once.
 What is not a flag may come from the environment (LEADLINE_MAP for --map) or
 from a file (--config); --print-config shows what counts and where it came from.
 
-Nothing is durable yet: a server that stops forgets its vehicles.`,
+With --data, or --broker, every measurement is durable before it is
+acknowledged, and a server that starts goes on with the drives that it had.
+Without either a server that stops forgets its vehicles.`,
 		Args: cobra.NoArgs,
 		RunE: func(c *cobra.Command, _ []string) error { return serve(c, o) },
 	}
@@ -64,6 +67,7 @@ Nothing is durable yet: a server that stops forgets its vehicles.`,
 	f.DurationVar(&o.drainTimeout, "drain-timeout", 10*time.Second, "how long to wait for streams when stopping")
 	f.Var(&o.logFormat, "log-format", "form of the log: text or json")
 	f.Var(&o.logLevel, "log-level", "least level of what is logged: debug, info, warn or error")
+	o.keep.flags(c)
 	f.BoolVar(&o.printConfig, "print-config", false, "print the settings that count and where each came from, and end")
 	settable(c, "map", "suite", "uploads", "listen", "origin", "max-vehicles", "max-cells", "drain-timeout", "log-format", "log-level")
 	return c
@@ -124,6 +128,9 @@ func (o *serveOptions) config() (cfg *server.Config, closeMaps func(), err error
 		}
 		opened = append(opened, m)
 		cfg.Maps = append(cfg.Maps, m.served(name))
+	}
+	if cfg.Journal, err = o.keep.options(); err != nil {
+		return nil, closeMaps, err
 	}
 	if o.uploads != "" {
 		cfg.Uploads = uploadsTo(o.uploads)

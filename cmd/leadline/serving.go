@@ -38,6 +38,12 @@ func (o *serveOptions) start(log *slog.Logger) (*serving, error) {
 		return nil, err
 	}
 	cfg.Log, cfg.Version = log, versionText()
+	if cfg.Journal != nil {
+		if cfg.Build, err = buildIdentity(); err != nil {
+			closeMaps()
+			return nil, err
+		}
+	}
 	s, err := server.New(*cfg)
 	if err != nil {
 		closeMaps()

@@ -10,6 +10,7 @@ import (
 
 	"leadline/engine/filter"
 	"leadline/engine/geo"
+	"leadline/engine/journal"
 	"leadline/engine/sensor"
 	"leadline/engine/session"
 	"leadline/engine/summary"
@@ -27,6 +28,12 @@ type Config struct {
 	// MaxCells is session.Config.MaxCells.
 	MaxCells int
 	Limits   Limits
+	// Journal, if set, keeps what comes before it is acknowledged: its Log is
+	// this configuration's.
+	Journal *journal.Options
+	// Build tells builds of this program apart: what another one computed is
+	// computed again.
+	Build string
 	// Uploads, if set, lets clients add maps.
 	Uploads *Uploads
 	// Access, if set, is who may do what; nil is that everybody may do all.
@@ -199,6 +206,9 @@ func (c *Config) Validate() error {
 		errs = append(errs, c.Uploads.validate()...)
 	} else if len(c.Maps) == 0 {
 		errs = append(errs, errors.New("server: no map: give at least one"))
+	}
+	if c.Journal != nil {
+		errs = append(errs, c.Journal.Validate())
 	}
 	for _, f := range c.Limits.fields() {
 		if *f.v < 0 {

@@ -18,5 +18,8 @@
 // An atlas counts the sessions of each map. One that is replaced goes on under
 // the drives that are on it, and is closed when the last one leaves.
 //
-// Nothing is durable yet: replies say so.
+// With a journal (engine/journal) what comes of a drive is durable before its
+// session sees it, and a server that starts goes on with the drives that the
+// journal holds: see recorder.go and recover.go. Without one replies say that
+// nothing is durable.
 package server

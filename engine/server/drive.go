@@ -16,14 +16,30 @@ import (
 
 // Everything here runs on the owner's goroutine.
 
-// batch takes the measurements of one batch, unless it is in already.
+// batch has a batch recorded and then takes it, unless it is in already.
 func (o *owner) batch(b *leadlinev1.Batch) {
-	if b.GetSequence() > 0 && b.GetSequence() <= o.sequence {
-		o.receipt(&leadlinev1.Receipt{Sequence: o.sequence})
+	if b.GetSequence() > 0 && b.GetSequence() <= o.submitted {
+		o.after(func() { o.receipt(&leadlinev1.Receipt{Sequence: o.sequence}) })
 		return
 	}
 	if err := o.wrongBatch(b); err != nil {
-		o.hangup(err)
+		o.after(func() { o.hangup(err) })
+		return
+	}
+	data, err := o.rec.encode(b)
+	if err != nil {
+		o.after(func() { o.hangup(badField("batch", "batch %d: %v", b.GetSequence(), err)) })
+		return
+	}
+	o.submitted = b.GetSequence()
+	o.record(kindBatch, data, func() { o.takeBatch(b) }, o.unrecorded)
+}
+
+// takeBatch takes the measurements of a batch that is recorded. One that the
+// drive's end has overtaken is left out.
+func (o *owner) takeBatch(b *leadlinev1.Batch) {
+	if o.ended {
+		o.hangup(o.tooLate(b))
 		return
 	}
 	r := &leadlinev1.Receipt{Sequence: b.GetSequence()}
@@ -58,16 +74,20 @@ func (o *owner) enter(n *news, i int, m *leadlinev1.SensorMeasurement) *leadline
 	return nil
 }
 
+func (o *owner) tooLate(b *leadlinev1.Batch) error {
+	return refuse(leadlinev1.Reason_REASON_DRIVE_ENDED, o.about(), "batch %d came after the end of drive %q: open another drive", b.GetSequence(), o.drive)
+}
+
 // wrongBatch says what is wrong with a batch as a whole.
 func (o *owner) wrongBatch(b *leadlinev1.Batch) error {
 	seq, n, most := b.GetSequence(), len(b.GetMeasurements()), o.srv.cfg.Limits.BatchMeasurements
 	switch {
 	case seq == 0:
 		return badField("batch.sequence", "batch: sequence is missing: count the batches of a drive from 1")
-	case seq != o.sequence+1:
-		return refuse(leadlinev1.Reason_REASON_OUT_OF_ORDER, o.about(), "batch %d came after batch %d: send %d next", seq, o.sequence, o.sequence+1)
+	case seq != o.submitted+1:
+		return refuse(leadlinev1.Reason_REASON_OUT_OF_ORDER, o.about(), "batch %d came after batch %d: send %d next", seq, o.submitted, o.submitted+1)
 	case o.ended:
-		return refuse(leadlinev1.Reason_REASON_DRIVE_ENDED, o.about(), "batch %d came after the end of drive %q: open another drive", seq, o.drive)
+		return o.tooLate(b)
 	case n > most:
 		return refuse(leadlinev1.Reason_REASON_BAD_FIELD, about{"field": "batch.measurements", "limit": "batch", "most": strconv.Itoa(most)},
 			"batch %d holds %d measurements: at most %d; split it", seq, n, most)
@@ -157,6 +177,7 @@ func withdrawn(times []sensor.Time) *leadlinev1.Withdrawn {
 }
 
 func (o *owner) receipt(r *leadlinev1.Receipt) {
+	r.Durable = o.rec.line != nil
 	o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Receipt{Receipt: r}})
 }
 
@@ -164,6 +185,16 @@ func (o *owner) receipt(r *leadlinev1.Receipt) {
 func (o *owner) counts() (accepted, refused uint64) {
 	accepted, refused = o.sess.Counts()
 	return accepted, refused + o.malformed
+}
+
+// end has the end of the drive recorded, once, ends it, and calls then, on the
+// owner's goroutine, with how it ended or why that is not recorded.
+func (o *owner) end(then func(*leadlinev1.Closed, error)) {
+	if o.ended {
+		o.after(func() { then(o.closing(), nil) })
+		return
+	}
+	o.record(kindEnd, nil, func() { then(o.closing(), nil) }, func(err error) { then(nil, err) })
 }
 
 // closing ends the drive, once, and says how it ended.

@@ -49,6 +49,9 @@ var reasonCodes = map[leadlinev1.Reason]codes.Code{
 	leadlinev1.Reason_REASON_IDENTITY_EXPIRED:   codes.Unauthenticated,
 	leadlinev1.Reason_REASON_IDENTITY_UNCHECKED: codes.Unavailable,
 	leadlinev1.Reason_REASON_NOT_ALLOWED:        codes.PermissionDenied,
+	leadlinev1.Reason_REASON_JOURNAL_FULL:       codes.ResourceExhausted,
+	leadlinev1.Reason_REASON_JOURNAL_DOWN:       codes.Unavailable,
+	leadlinev1.Reason_REASON_JOURNAL_DAMAGED:    codes.DataLoss,
 }
 
 // about says what a failure is about, for programs: vehicle, drive, map, suite,

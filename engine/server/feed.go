@@ -41,10 +41,10 @@ func (s *Server) Feed(stream feedStream) error {
 	}
 	defer s.leave(o)
 	a := &attachment{
-		reply: open.GetReply(),
-		in:    make(chan work, s.cfg.Limits.QueueBatches),
-		out:   make(chan item),
-		gone:  make(chan struct{}), taken: make(chan struct{}),
+		reply: open.GetReply(), acknowledged: open.GetAcknowledged(),
+		in:   make(chan work, s.cfg.Limits.QueueBatches),
+		out:  make(chan item),
+		gone: make(chan struct{}), taken: make(chan struct{}),
 	}
 	defer close(a.gone)
 	select {

@@ -15,6 +15,7 @@ import (
 	"leadline/engine/wire"
 	leadlinev1 "leadline/proto/leadline/v1"
 
+	"google.golang.org/grpc/status"
 	"google.golang.org/protobuf/types/known/timestamppb"
 )
 
@@ -84,20 +85,36 @@ func (s *Server) EndDrive(ctx context.Context, req *leadlinev1.EndDriveRequest) 
 	if d := req.GetDrive(); d != "" && d != o.drive {
 		return nil, refuse(leadlinev1.Reason_REASON_OTHER_DRIVE, o.about(), "vehicle %q is on drive %q, not %q: name that one, or none", o.vehicle, o.drive, clip(d))
 	}
-	closed := make(chan *leadlinev1.Closed, 1)
+	type end struct {
+		closed *leadlinev1.Closed
+		err    error
+	}
+	ended := make(chan end, 1)
 	err = o.do(ctx, func() {
 		was := o.ended
-		c := o.closing()
-		if !was && o.at != nil {
-			o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Closed{Closed: c}})
-			o.hangup(nil)
-		}
-		closed <- c
+		o.end(func(c *leadlinev1.Closed, err error) {
+			if err != nil {
+				ended <- end{err: o.journalRefusal(err)}
+				return
+			}
+			if !was {
+				o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Closed{Closed: c}})
+				o.hangup(nil)
+			}
+			ended <- end{closed: c}
+		})
 	})
 	if err != nil {
 		return nil, err
 	}
-	return &leadlinev1.EndDriveResponse{Closed: <-closed}, nil
+	select {
+	case e := <-ended:
+		return &leadlinev1.EndDriveResponse{Closed: e.closed}, e.err
+	case <-o.dead:
+		return nil, o.err
+	case <-ctx.Done():
+		return nil, status.FromContextError(ctx.Err()).Err()
+	}
 }
 
 // ListSuites lists the suites that drives may use: see the .proto file.

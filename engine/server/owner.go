@@ -43,7 +43,9 @@ type owner struct {
 	// Of the goroutine.
 	sess       Session
 	beside     *searches
+	rec        *recorder
 	sequence   uint64 // highest batch that is in
+	submitted  uint64 // and that is on its way there
 	malformed  uint64 // measurements refused before they reached the session
 	posteriors uint64
 	ended      bool
@@ -57,11 +59,12 @@ type owner struct {
 
 // attachment joins a stream to an owner.
 type attachment struct {
-	reply leadlinev1.Reply
-	in    chan work     // from the stream, bounded
-	out   chan item     // to the stream
-	gone  chan struct{} // closed by the stream when it is over
-	taken chan struct{} // closed by the owner when another stream took over
+	reply        leadlinev1.Reply
+	acknowledged uint64        // the highest batch that the client has a durable receipt for
+	in           chan work     // from the stream, bounded
+	out          chan item     // to the stream
+	gone         chan struct{} // closed by the stream when it is over
+	taken        chan struct{} // closed by the owner when another stream took over
 }
 
 // work is what a stream hands to its owner.
@@ -86,7 +89,7 @@ func newOwner(s *Server, req *leadlinev1.Open, m *mapUse, sess Session, beside *
 		openedAt: s.cfg.Now(),
 		attach:   make(chan *attachment), asks: make(chan func()),
 		quit: make(chan struct{}), dead: make(chan struct{}),
-		streams: 1,
+		streams: 1, rec: newRecorder(nil),
 	}
 	o.subject, o.extras = o.newSubject(), newExtras(sess, m.Space)
 	o.alarms = map[alarmKey]uint64{}
@@ -127,24 +130,30 @@ func (o *owner) run() {
 	}()
 	for {
 		var (
-			in   <-chan work
-			out  chan<- item
-			next item
-			gone <-chan struct{}
+			attach <-chan *attachment
+			in     <-chan work
+			out    chan<- item
+			next   item
+			gone   <-chan struct{}
 		)
 		if o.at != nil {
 			gone = o.at.gone
 			if len(o.out) > 0 {
 				out, next = o.at.out, o.out[0]
-			} else {
+			} else if !o.rec.full() {
 				in = o.at.in
 			}
+		}
+		if !o.rec.busy() { // a stream is told what is in
+			attach = o.attach
 		}
 		select {
 		case <-o.quit:
 			return
-		case a := <-o.attach:
+		case a := <-attach:
 			o.take(a)
+		case <-o.rec.poke:
+			o.settle()
 		case f := <-o.asks:
 			f()
 		case <-o.subject.poke:
@@ -169,6 +178,9 @@ func (o *owner) leave() {
 	if !o.ended {
 		o.farewell(false, "", why)
 		o.clearAlarms("the drive was dropped: " + why)
+	}
+	if !errors.Is(o.err, errStopping) {
+		o.srv.dropLine(o.rec.line)
 	}
 	o.srv.hub.forget(o.subject)
 	accepted, refused := o.counts()
@@ -211,6 +223,11 @@ func (o *owner) take(a *attachment) {
 		close(o.at.taken)
 	}
 	o.at, o.out = a, nil
+	if a.acknowledged > o.sequence {
+		o.log.Error("acknowledged measurements are lost", "acknowledged", a.acknowledged, "here", o.sequence)
+		o.hangup(lostAcknowledged(o.about(), a.acknowledged, o.sequence))
+		return
+	}
 	o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Opened{Opened: &leadlinev1.Opened{
 		Sequence: o.sequence, MapFingerprint: o.m.Space.Fingerprint(),
 		MaxBatch:        uint32(o.srv.cfg.Limits.BatchMeasurements),
@@ -226,16 +243,26 @@ func (o *owner) say(m *leadlinev1.FeedResponse) {
 	}
 }
 
-// hangup ends the stream after the replies that wait.
-func (o *owner) hangup(err error) { o.out = append(o.out, item{last: true, err: err}) }
+// hangup ends the stream, if there is one, after the replies that wait.
+func (o *owner) hangup(err error) {
+	if o.at != nil {
+		o.out = append(o.out, item{last: true, err: err})
+	}
+}
 
 func (o *owner) work(w work) {
 	switch {
 	case w.hangup:
-		o.hangup(w.err)
+		o.after(func() { o.hangup(w.err) })
 	case w.end:
-		o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Closed{Closed: o.closing()}})
-		o.hangup(nil)
+		o.end(func(c *leadlinev1.Closed, err error) {
+			if err != nil {
+				o.unrecorded(err)
+				return
+			}
+			o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Closed{Closed: c}})
+			o.hangup(nil)
+		})
 	default:
 		o.batch(w.batch)
 	}

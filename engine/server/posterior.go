@@ -27,6 +27,7 @@ var statuses = map[summary.Status]leadlinev1.Status{
 func (s *Server) message(p *summary.Posterior, vehicle string, m Map, malformed uint64, now time.Time) *leadlinev1.Posterior {
 	out := message(p, vehicle, m, now)
 	out.Counts.Refused += malformed
+	out.Durable = s.journal != nil
 	out.NewerMapFingerprint = s.atlas.newer(m.Name, p.Map)
 	return out
 }

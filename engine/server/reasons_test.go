@@ -17,6 +17,7 @@ import (
 	"google.golang.org/protobuf/types/known/emptypb"
 
 	"leadline/engine/client"
+	"leadline/engine/journal"
 	"leadline/engine/sensor"
 	"leadline/engine/server/identity"
 	"leadline/engine/session"
@@ -306,6 +307,24 @@ func wrongCalls(t *testing.T) []wrongCall {
 			_, err := leadlinev1.NewPositionServiceClient(conn).EndDrive(showing(t, token("v", "roles", "vehicle")), &leadlinev1.EndDriveRequest{Vehicle: "w"})
 			return saidBy(err)
 		}},
+		{leadlinev1.Reason_REASON_JOURNAL_FULL, "drive vehicle", Config{Journal: crowded(t)}, open(func(*leadlinev1.Open) {})},
+		{leadlinev1.Reason_REASON_JOURNAL_DOWN, "drive vehicle", Config{Journal: shared(t)}, func(t *testing.T, s *Server, conn *grpc.ClientConn) said {
+			st, _ := openRaw(t, conn, d)
+			j, _, err := journal.Open(limited(t), *s.cfg.Journal, func(journal.Record) error { return nil })
+			if err != nil {
+				t.Fatal(err)
+			}
+			t.Cleanup(func() { j.Close() })
+			if err := st.Send(batch(1)); err != nil {
+				t.Fatal(err)
+			}
+			return saidBy(ends(st))
+		}},
+		{leadlinev1.Reason_REASON_JOURNAL_DAMAGED, "drive vehicle", Config{}, open(func(o *leadlinev1.Open) { o.Acknowledged = 7 })},
+		{leadlinev1.Reason_REASON_JOURNAL_DAMAGED, "drive vehicle", Config{}, func(t *testing.T, s *Server, conn *grpc.ClientConn) said {
+			openRaw(t, conn, d)
+			return open(func(o *leadlinev1.Open) { o.Acknowledged = 7 })(t, s, conn)
+		}},
 		{leadlinev1.Reason_REASON_NOT_OFFERED, "-", Config{NewSession: newTally}, ask(&leadlinev1.WhereRequest{Vehicles: []string{"v"}, RegionFractions: []float64{0.5}})},
 	}
 }
@@ -358,7 +377,7 @@ func TestReasonCodes(t *testing.T) {
 			codes.InvalidArgument: "invalid_argument", codes.NotFound: "not_found", codes.AlreadyExists: "already_exists",
 			codes.FailedPrecondition: "failed_precondition", codes.ResourceExhausted: "resource_exhausted",
 			codes.DeadlineExceeded: "deadline_exceeded", codes.Aborted: "aborted", codes.Unavailable: "unavailable",
-			codes.Internal: "internal", codes.Unimplemented: "unimplemented",
+			codes.Internal: "internal", codes.Unimplemented: "unimplemented", codes.DataLoss: "data_loss",
 			codes.Unauthenticated: "unauthenticated", codes.PermissionDenied: "permission_denied",
 		}[code])
 		if says := reasonComment(t, r); !strings.HasSuffix(says, " "+want+".") {

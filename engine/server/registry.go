@@ -48,12 +48,19 @@ func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error)
 	if o, err := s.resume(req); o != nil || err != nil {
 		return o, err
 	}
+	if n := req.GetAcknowledged(); n > 0 {
+		return nil, lostAcknowledged(about{"vehicle": h.Vehicle, "drive": req.GetDrive()}, n, 0)
+	}
 	select {
 	case s.openings <- struct{}{}:
 	case <-ctx.Done():
 		return nil, status.FromContextError(ctx.Err()).Err()
 	case <-s.draining:
 		return nil, errStopping
+	}
+	opened, err := s.opening(req, m)
+	if err != nil {
+		return nil, badField("open", "open: %v", err)
 	}
 	beside := &searches{slots: s.searching}
 	sess, err := s.newSession(session.Config{
@@ -64,7 +71,7 @@ func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error)
 	if err != nil {
 		return nil, err
 	}
-	return s.admit(req, m, sess, beside)
+	return s.admit(req, m, sess, beside, opened)
 }
 
 // newSession makes a session, and turns whatever goes wrong into a status.
@@ -107,6 +114,8 @@ func (s *Server) resumeLocked(req *leadlinev1.Open) (*owner, error) {
 	}
 	o := s.owners[req.GetHeader().GetVehicle()]
 	switch {
+	case o == nil && s.kept[req.GetHeader().GetVehicle()] != nil && !req.GetReplace():
+		return nil, s.kept[req.GetHeader().GetVehicle()].err
 	case o == nil:
 		return nil, nil
 	case o.drive == req.GetDrive():
@@ -122,7 +131,7 @@ func (s *Server) resumeLocked(req *leadlinev1.Open) (*owner, error) {
 }
 
 // admit makes an owner of a session, unless another stream was faster.
-func (s *Server) admit(req *leadlinev1.Open, m *mapUse, sess Session, beside *searches) (*owner, error) {
+func (s *Server) admit(req *leadlinev1.Open, m *mapUse, sess Session, beside *searches, opened openedRecord) (*owner, error) {
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	if o, err := s.resumeLocked(req); o != nil || err != nil {
@@ -136,6 +145,7 @@ func (s *Server) admit(req *leadlinev1.Open, m *mapUse, sess Session, beside *se
 		return nil, full("vehicles", s.cfg.Limits.Vehicles, "open: the server has its %d vehicles, all of them on a drive: try later, or raise the limit", s.cfg.Limits.Vehicles)
 	}
 	o := newOwner(s, req, m, sess, beside)
+	s.record(o, opened)
 	s.owners[vehicle] = o
 	s.atlas.hold(m)
 	s.hub.begin(o.subject)

@@ -15,6 +15,7 @@ import (
 	"google.golang.org/grpc/keepalive"
 	"google.golang.org/grpc/reflection"
 
+	"leadline/engine/journal"
 	"leadline/engine/server/web"
 	"leadline/engine/session"
 	leadlinev1 "leadline/proto/leadline/v1"
@@ -37,6 +38,7 @@ type Server struct {
 	hub         *hub
 	alarms      *alarmBook
 	atlas       *atlas
+	journal     *journal.Journal // nil: nothing is durable
 	// uploads is nil where none are taken; uploading holds a token each.
 	uploads   *Uploads
 	uploading chan struct{}
@@ -47,7 +49,8 @@ type Server struct {
 	mu     sync.Mutex
 	closed bool // no owner may be added
 	owners map[string]*owner
-	ended  sync.WaitGroup // counts owners
+	kept   map[string]*kept // drives of the journal that cannot go on
+	ended  sync.WaitGroup   // counts owners
 }
 
 // New makes a server, or an error that lists what is wrong with the
@@ -75,6 +78,7 @@ func New(cfg Config) (*Server, error) {
 		drawing:     make(chan struct{}, drawnAtOnce),
 		draining:    make(chan struct{}),
 		owners:      map[string]*owner{},
+		kept:        map[string]*kept{},
 		hub:         newHub(cfg.Limits, cfg.Now),
 		alarms:      newAlarmBook(cfg.Now),
 		atlas:       newAtlas(cfg.Maps),
@@ -111,6 +115,11 @@ func New(cfg Config) (*Server, error) {
 	healthv1.RegisterHealthServer(s.web, s.health)
 	if cfg.Uploads != nil {
 		if err := s.keepMaps(); err != nil {
+			return nil, err
+		}
+	}
+	if cfg.Journal != nil {
+		if err := s.openJournal(); err != nil {
 			return nil, err
 		}
 	}
@@ -167,6 +176,11 @@ func (s *Server) Shutdown(ctx context.Context) error {
 	}
 	s.stopOwners()
 	s.ended.Wait()
+	if s.journal != nil {
+		if closed := s.journal.Close(); closed != nil {
+			s.cfg.Log.Error("journal cannot be closed", "error", closed)
+		}
+	}
 	if closed := s.atlas.close(); closed != nil {
 		s.cfg.Log.Error("map cannot be closed", "error", closed)
 	}

@@ -79,28 +79,3 @@ func (s *Server) AddSighting(ctx context.Context, req *leadlinev1.AddSightingReq
 	s.cfg.Log.Info("sighting entered", "vehicle", o.vehicle, "drive", o.drive, "who", clip(sighting.GetWho()), "drive_time", ts.AsTime(), "refused", refused.GetDetail())
 	return &leadlinev1.AddSightingResponse{Measurement: entered, Refusal: refused, Before: before, After: after}, nil
 }
-
-// addOne enters one measurement beside what the vehicle sends, or says why it is
-// refused. The message must not change any more.
-func (o *owner) addOne(ctx context.Context, m *leadlinev1.SensorMeasurement) (*leadlinev1.Refusal, error) {
-	type result struct {
-		refused *leadlinev1.Refusal
-		err     error
-	}
-	done := make(chan result, 1)
-	err := o.do(ctx, func() {
-		if o.ended {
-			done <- result{err: refuse(leadlinev1.Reason_REASON_DRIVE_ENDED, o.about(), "drive %q of vehicle %q has ended: nothing can be added", o.drive, o.vehicle)}
-			return
-		}
-		var n news
-		refused := o.enter(&n, 0, m)
-		o.tell(&n)
-		done <- result{refused: refused}
-	})
-	if err != nil {
-		return nil, err
-	}
-	r := <-done
-	return r.refused, r.err
-}

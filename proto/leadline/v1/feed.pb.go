@@ -190,8 +190,12 @@ type Open struct {
 	Drive string `protobuf:"bytes,2,opt,name=drive,proto3" json:"drive,omitempty"`
 	// A vehicle has one unfinished drive at a time: give up that one, if it is
 	// another.
-	Replace       bool  `protobuf:"varint,3,opt,name=replace,proto3" json:"replace,omitempty"`
-	Reply         Reply `protobuf:"varint,4,opt,name=reply,proto3,enum=leadline.v1.Reply" json:"reply,omitempty"`
+	Replace bool  `protobuf:"varint,3,opt,name=replace,proto3" json:"replace,omitempty"`
+	Reply   Reply `protobuf:"varint,4,opt,name=reply,proto3,enum=leadline.v1.Reply" json:"reply,omitempty"`
+	// The highest batch for which the client has a receipt that says durable; 0
+	// for none. A server that has less of the drive has lost what it acknowledged,
+	// and says so: JOURNAL_DAMAGED.
+	Acknowledged  uint64 `protobuf:"varint,5,opt,name=acknowledged,proto3" json:"acknowledged,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -252,6 +256,13 @@ func (x *Open) GetReply() Reply {
 		return x.Reply
 	}
 	return Reply_REPLY_UNSPECIFIED
+}
+
+func (x *Open) GetAcknowledged() uint64 {
+	if x != nil {
+		return x.Acknowledged
+	}
+	return 0
 }
 
 // Batch is a number of measurements that travel together.
@@ -824,12 +835,13 @@ const file_leadline_v1_feed_proto_rawDesc = "" +
 	"\x04open\x18\x01 \x01(\v2\x11.leadline.v1.OpenH\x00R\x04open\x12*\n" +
 	"\x05batch\x18\x02 \x01(\v2\x12.leadline.v1.BatchH\x00R\x05batch\x12$\n" +
 	"\x03end\x18\x03 \x01(\v2\x10.leadline.v1.EndH\x00R\x03endB\t\n" +
-	"\amessage\"\x92\x01\n" +
+	"\amessage\"\xb6\x01\n" +
 	"\x04Open\x120\n" +
 	"\x06header\x18\x01 \x01(\v2\x18.leadline.v1.DriveHeaderR\x06header\x12\x14\n" +
 	"\x05drive\x18\x02 \x01(\tR\x05drive\x12\x18\n" +
 	"\areplace\x18\x03 \x01(\bR\areplace\x12(\n" +
-	"\x05reply\x18\x04 \x01(\x0e2\x12.leadline.v1.ReplyR\x05reply\"g\n" +
+	"\x05reply\x18\x04 \x01(\x0e2\x12.leadline.v1.ReplyR\x05reply\x12\"\n" +
+	"\facknowledged\x18\x05 \x01(\x04R\facknowledged\"g\n" +
 	"\x05Batch\x12\x1a\n" +
 	"\bsequence\x18\x01 \x01(\x04R\bsequence\x12B\n" +
 	"\fmeasurements\x18\x02 \x03(\v2\x1e.leadline.v1.SensorMeasurementR\fmeasurements\"\x05\n" +

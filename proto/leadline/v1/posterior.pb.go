@@ -238,7 +238,11 @@ type Posterior struct {
 	LostAlarm bool `protobuf:"varint,37,opt,name=lost_alarm,json=lostAlarm,proto3" json:"lost_alarm,omitempty"`
 	// The alert limit of the vehicle's suite, m: what the 95 % radius must be
 	// within for the vehicle to be located.
-	AlertLimitM   float64 `protobuf:"fixed64,38,opt,name=alert_limit_m,json=alertLimitM,proto3" json:"alert_limit_m,omitempty"`
+	AlertLimitM float64 `protobuf:"fixed64,38,opt,name=alert_limit_m,json=alertLimitM,proto3" json:"alert_limit_m,omitempty"`
+	// Whether measurements that another build of the server had taken were taken
+	// again by this one, from its journal: what was told before that may differ in
+	// the last digits.
+	Recomputed    bool `protobuf:"varint,39,opt,name=recomputed,proto3" json:"recomputed,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -537,6 +541,13 @@ func (x *Posterior) GetAlertLimitM() float64 {
 		return x.AlertLimitM
 	}
 	return 0
+}
+
+func (x *Posterior) GetRecomputed() bool {
+	if x != nil {
+		return x.Recomputed
+	}
+	return false
 }
 
 // Place is the cell of the greatest density.
@@ -1596,7 +1607,7 @@ var File_leadline_v1_posterior_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\n" +
-	"\x1bleadline/v1/posterior.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/place.proto\"\x81\f\n" +
+	"\x1bleadline/v1/posterior.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/place.proto\"\xa1\f\n" +
 	"\tPosterior\x12.\n" +
 	"\x04time\x18\x01 \x01(\v2\x1a.google.protobuf.TimestampR\x04time\x12\x18\n" +
 	"\avehicle\x18\x02 \x01(\tR\avehicle\x12\x10\n" +
@@ -1644,7 +1655,10 @@ const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\x04lost\x18$ \x01(\x01R\x04lost\x12\x1d\n" +
 	"\n" +
 	"lost_alarm\x18% \x01(\bR\tlostAlarm\x12\"\n" +
-	"\ralert_limit_m\x18& \x01(\x01R\valertLimitMB\x13\n" +
+	"\ralert_limit_m\x18& \x01(\x01R\valertLimitM\x12\x1e\n" +
+	"\n" +
+	"recomputed\x18' \x01(\bR\n" +
+	"recomputedB\x13\n" +
 	"\x11_area_probability\"\xab\x01\n" +
 	"\x05Place\x121\n" +
 	"\bposition\x18\x01 \x01(\v2\x15.leadline.v1.PositionR\bposition\x12 \n" +

@@ -68,16 +68,18 @@ class FeedResponse(_message.Message):
     def __init__(self, opened: _Optional[_Union[Opened, _Mapping]] = ..., receipt: _Optional[_Union[Receipt, _Mapping]] = ..., posterior: _Optional[_Union[_posterior_pb2.Posterior, _Mapping]] = ..., closed: _Optional[_Union[Closed, _Mapping]] = ..., withdrawn: _Optional[_Union[_posterior_pb2.Withdrawn, _Mapping]] = ...) -> None: ...
 
 class Open(_message.Message):
-    __slots__ = ["drive", "header", "replace", "reply"]
+    __slots__ = ["acknowledged", "drive", "header", "replace", "reply"]
+    ACKNOWLEDGED_FIELD_NUMBER: _ClassVar[int]
     DRIVE_FIELD_NUMBER: _ClassVar[int]
     HEADER_FIELD_NUMBER: _ClassVar[int]
     REPLACE_FIELD_NUMBER: _ClassVar[int]
     REPLY_FIELD_NUMBER: _ClassVar[int]
+    acknowledged: int
     drive: str
     header: _drive_pb2.DriveHeader
     replace: bool
     reply: Reply
-    def __init__(self, header: _Optional[_Union[_drive_pb2.DriveHeader, _Mapping]] = ..., drive: _Optional[str] = ..., replace: bool = ..., reply: _Optional[_Union[Reply, str]] = ...) -> None: ...
+    def __init__(self, header: _Optional[_Union[_drive_pb2.DriveHeader, _Mapping]] = ..., drive: _Optional[str] = ..., replace: bool = ..., reply: _Optional[_Union[Reply, str]] = ..., acknowledged: _Optional[int] = ...) -> None: ...
 
 class Opened(_message.Message):
     __slots__ = ["map_fingerprint", "max_batch", "max_message_bytes", "sequence", "version"]

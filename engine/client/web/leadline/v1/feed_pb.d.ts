@@ -88,6 +88,15 @@ export declare type Open = Message<"leadline.v1.Open"> & {
    * @generated from field: leadline.v1.Reply reply = 4;
    */
   reply: Reply;
+
+  /**
+   * The highest batch for which the client has a receipt that says durable; 0
+   * for none. A server that has less of the drive has lost what it acknowledged,
+   * and says so: JOURNAL_DAMAGED.
+   *
+   * @generated from field: uint64 acknowledged = 5;
+   */
+  acknowledged: bigint;
 };
 
 /**

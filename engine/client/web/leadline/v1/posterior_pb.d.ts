@@ -291,6 +291,15 @@ export declare type Posterior = Message<"leadline.v1.Posterior"> & {
    * @generated from field: double alert_limit_m = 38;
    */
   alertLimitM: number;
+
+  /**
+   * Whether measurements that another build of the server had taken were taken
+   * again by this one, from its journal: what was told before that may differ in
+   * the last digits.
+   *
+   * @generated from field: bool recomputed = 39;
+   */
+  recomputed: boolean;
 };
 
 /**

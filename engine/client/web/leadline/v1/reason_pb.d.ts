@@ -290,6 +290,30 @@ export enum Reason {
    * @generated from enum value: REASON_NOT_ALLOWED = 46;
    */
   NOT_ALLOWED = 46,
+
+  /**
+   * There is no room to keep measurements, on the disk or within the journal's
+   * bound: send again later what was not acknowledged. RESOURCE_EXHAUSTED.
+   *
+   * @generated from enum value: REASON_JOURNAL_FULL = 50;
+   */
+  JOURNAL_FULL = 50,
+
+  /**
+   * The journal cannot be written: send again later what was not acknowledged.
+   * UNAVAILABLE.
+   *
+   * @generated from enum value: REASON_JOURNAL_DOWN = 51;
+   */
+  JOURNAL_DOWN = 51,
+
+  /**
+   * Of the drive something is missing from the journal or cannot be read, as the
+   * message says: open another drive, with replace. DATA_LOSS.
+   *
+   * @generated from enum value: REASON_JOURNAL_DAMAGED = 52;
+   */
+  JOURNAL_DAMAGED = 52,
 }
 
 /**

@@ -1,0 +1,244 @@
+package journal
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"hash/fnv"
+	"os"
+	"path/filepath"
+	"sync"
+	"sync/atomic"
+	"time"
+
+	"github.com/nats-io/nats.go/jetstream"
+)
+
+// Why a record is not taken. What is refused is not in the journal.
+var (
+	// ErrFull says that there is no room, on the disk or within the bound; there
+	// may be later.
+	ErrFull = errors.New("the journal is full")
+	// ErrDown says that the broker cannot be reached, fails, or is behind; it
+	// may be back later.
+	ErrDown = errors.New("the journal cannot be written")
+	// ErrTaken says that another server writes this journal. It stays so.
+	ErrTaken = errors.New("another server writes this journal")
+	// ErrClosed says that the journal has been closed.
+	ErrClosed = errors.New("the journal is closed")
+)
+
+// Journal is one that is open. Its methods may be called from any goroutine.
+type Journal struct {
+	o     Options
+	epoch uint64
+	parts []*partition
+	lock  *os.File
+	marks *marks
+
+	broker atomic.Pointer[broker]
+	reopen sync.Mutex // held while a broker within is started again
+
+	bytes   atomic.Int64 // of the stream, about
+	records atomic.Uint64
+	commits atomic.Uint64
+	refused atomic.Uint64
+	room    room
+
+	ended context.Context // done when the journal is closed
+	end   context.CancelFunc
+	tasks sync.WaitGroup
+}
+
+// Open opens a journal, or makes one, reads all that it holds, and takes it
+// over: whoever wrote it until then has ErrTaken. take is given each record, in
+// the order of its line; it must not keep the data, and its error ends Open.
+func Open(ctx context.Context, o Options, take func(Record) error) (*Journal, *Found, error) {
+	if err := o.Validate(); err != nil {
+		return nil, nil, err
+	}
+	o = o.withDefaults()
+	j := &Journal{o: o}
+	j.ended, j.end = context.WithCancel(context.Background())
+	fail := func(err error) (*Journal, *Found, error) {
+		j.end()
+		if b := j.broker.Load(); b != nil {
+			b.close()
+		}
+		j.unlock()
+		return nil, nil, err
+	}
+	if o.Dir != "" {
+		if err := os.MkdirAll(o.Dir, 0o700); err != nil {
+			return fail(fmt.Errorf("journal: %w", err))
+		}
+		var err error
+		if j.lock, err = lockDir(o.Dir); err != nil {
+			return fail(fmt.Errorf("journal: %w", err))
+		}
+	}
+	b, err := connect(&o)
+	if err != nil {
+		return fail(err)
+	}
+	j.broker.Store(b)
+	st, info, err := b.stream(ctx, &o)
+	if err != nil {
+		return fail(err)
+	}
+	n, err := partitions(info)
+	if err != nil {
+		return fail(err)
+	}
+	if o.Dir != "" {
+		if j.marks, err = openMarks(filepath.Join(o.Dir, "marks"), n); err != nil {
+			return fail(fmt.Errorf("journal: %w", err))
+		}
+	}
+	for i := range n {
+		j.parts = append(j.parts, newPartition(j, i))
+	}
+	j.bytes.Store(int64(info.State.Bytes))
+	found, err := j.read(ctx, st, info, take)
+	if err != nil {
+		return fail(err)
+	}
+	if err := j.takeOver(ctx); err != nil {
+		return fail(err)
+	}
+	for _, p := range j.parts {
+		j.tasks.Go(p.run)
+	}
+	j.tasks.Go(j.keep)
+	return j, found, nil
+}
+
+// takeOver writes an empty pack of a new epoch to each partition.
+func (j *Journal) takeOver(ctx context.Context) error {
+	for _, p := range j.parts {
+		p.pack.epoch = j.epoch
+		if err := p.commit(ctx, nil); err != nil {
+			return fmt.Errorf("journal: partition %d of %d: %w", p.index+1, len(j.parts), err)
+		}
+	}
+	return nil
+}
+
+// Close commits what waits and closes the journal; what cannot be committed
+// within a while has ErrClosed.
+func (j *Journal) Close() error {
+	for _, p := range j.parts {
+		p.close()
+	}
+	idle := make(chan struct{})
+	go func() {
+		for _, p := range j.parts {
+			<-p.idle
+		}
+		close(idle)
+	}()
+	select {
+	case <-idle:
+	case <-time.After(callTimeout):
+	}
+	j.end()
+	j.tasks.Wait()
+	<-idle
+	j.broker.Load().close()
+	j.unlock()
+	return nil
+}
+
+func (j *Journal) unlock() {
+	if j.marks != nil {
+		j.marks.close()
+	}
+	if j.lock != nil {
+		j.lock.Close()
+	}
+}
+
+// of is the partition of a key.
+func (j *Journal) of(key string) *partition {
+	h := fnv.New64a()
+	h.Write([]byte(key))
+	return j.parts[mix(h.Sum64())%uint64(len(j.parts))]
+}
+
+// mix spreads the bits of a hash: the low ones of FNV-1a know only the low bits
+// of what went in. Source: the finalizer of splitmix64 (Steele, Lea, Flood 2014).
+func mix(x uint64) uint64 {
+	x = (x ^ x>>30) * 0xbf58476d1ce4e5b9
+	x = (x ^ x>>27) * 0x94d049bb133111eb
+	return x ^ x>>31
+}
+
+// Begin begins a line. Those of one key are in one partition, in the order in
+// which they began.
+func (j *Journal) Begin(key string) *Line {
+	p := j.of(key)
+	p.mu.Lock()
+	defer p.mu.Unlock()
+	p.pack.lines++
+	l := &Line{p: p, id: p.pack.lines, keep: p.pack.number + 1}
+	p.lines[l.id] = l
+	return l
+}
+
+// Line returns a line that Open found; nil if there is none.
+func (j *Journal) Line(at Place) *Line {
+	p := j.parts[at.Partition]
+	p.mu.Lock()
+	defer p.mu.Unlock()
+	return p.lines[at.Line]
+}
+
+// State is how a journal is doing.
+type State struct {
+	// Where is the folder or the broker.
+	Where string
+	// Epoch counts how often it was opened.
+	Epoch      uint64
+	Partitions int
+	// Bytes is what it takes, MaxBytes what it may, FreeBytes what is free on
+	// its disk (-1: not known), LeaveBytes what is to be left free.
+	Bytes, MaxBytes, FreeBytes, LeaveBytes int64
+	// Waiting is the number of records that are not committed yet; Records,
+	// Commits and Refused count since it was opened.
+	Waiting                   int
+	Records, Commits, Refused uint64
+	// Lines is how many lines it keeps records for.
+	Lines int
+	// Err is why new records are refused now; nil if they are taken.
+	Err error
+}
+
+// State tells how the journal is doing.
+func (j *Journal) State() State {
+	s := State{
+		Where: j.o.Dir, Epoch: j.epoch, Partitions: len(j.parts),
+		Bytes: j.bytes.Load(), MaxBytes: j.o.MaxBytes, FreeBytes: -1, LeaveBytes: j.o.FreeBytes,
+		Records: j.records.Load(), Commits: j.commits.Load(), Refused: j.refused.Load(),
+	}
+	if s.Where == "" {
+		s.Where, s.LeaveBytes = j.o.Broker.URL, 0
+	} else if free, err := freeBytes(j.o.Dir); err == nil {
+		s.FreeBytes = free
+	}
+	for _, p := range j.parts {
+		p.mu.Lock()
+		s.Waiting += len(p.queue) + p.taken
+		s.Lines += len(p.lines)
+		s.Err = errors.Join(s.Err, p.down)
+		p.mu.Unlock()
+	}
+	if s.Err == nil {
+		s.Err = j.full(0)
+	}
+	return s
+}
+
+// stream is the broker's stream.
+func (j *Journal) stream(ctx context.Context) (jetstream.Stream, error) {
+	return j.broker.Load().js.Stream(ctx, streamName)
+}

@@ -1,0 +1,260 @@
+package journal
+
+import (
+	"context"
+	"fmt"
+	"sync"
+)
+
+// partition is one subject and its committer.
+type partition struct {
+	j       *Journal
+	index   int
+	subject string
+
+	mu     sync.Mutex
+	queue  []waiting
+	bytes  int // of the queue
+	taken  int // records that are being committed
+	closed bool
+	down   error         // why commits fail
+	wake   chan struct{} // holds a token when there is something to do
+	idle   chan struct{} // closed when the committer has ended
+	lines  map[uint64]*Line
+	pack   pack // the last that is in; its records are none
+	places []indexed
+
+	// Of the committer.
+	last uint64 // the broker's sequence of the last pack
+	buf  []byte
+}
+
+// waiting is a part of a record in the queue; without a line it is none, and
+// waits for the next commit.
+type waiting struct {
+	line   *Line
+	part   part
+	urgent bool
+	done   func(pack uint64, err error) // of the last part
+}
+
+// indexed is where a pack is at the broker: of one in indexEvery.
+type indexed struct{ number, sequence uint64 }
+
+const indexEvery = 16
+
+// maxQueued bounds the bytes that wait in a partition.
+const maxQueued = 64 << 20
+
+func newPartition(j *Journal, i int) *partition {
+	return &partition{
+		j: j, index: i, subject: subject(i), lines: map[uint64]*Line{},
+		wake: make(chan struct{}, 1), idle: make(chan struct{}), pack: pack{first: 1},
+	}
+}
+
+func (p *partition) append(l *Line, kind byte, data []byte, urgent bool, done func(uint64, error)) {
+	p.mu.Lock()
+	err := l.broken
+	switch {
+	case p.closed:
+		err = ErrClosed
+	case err == nil && p.down != nil && p.bytes > 0:
+		err = p.down // what waits already shows when it is over
+	case err == nil && p.bytes+len(data) > maxQueued && p.bytes > 0:
+		err = fmt.Errorf("%w: %d MiB wait to be committed", ErrDown, p.bytes>>20)
+	}
+	if err != nil {
+		l.broken = err
+		p.mu.Unlock()
+		p.j.refused.Add(1)
+		done(0, err)
+		return
+	}
+	if l != nil {
+		p.push(l, kind, data, urgent, done)
+	}
+	p.mu.Unlock()
+	p.poke()
+}
+
+// push puts a record into the queue, in parts.
+func (p *partition) push(l *Line, kind byte, data []byte, urgent bool, done func(uint64, error)) {
+	p.bytes += len(data)
+	for parts := byte(firstPart); ; parts = 0 {
+		w := waiting{line: l, part: part{kind: kind, parts: parts, line: l.id, data: data}, urgent: urgent}
+		if len(data) > maxPart {
+			w.part.data, data = data[:maxPart:maxPart], data[maxPart:]
+			p.queue = append(p.queue, w)
+			continue
+		}
+		w.part.parts |= lastPart
+		w.done = done
+		p.queue = append(p.queue, w)
+		return
+	}
+}
+
+// header has an empty pack committed, and waits for it.
+func (p *partition) header(ctx context.Context) error {
+	done := make(chan error, 1)
+	p.mu.Lock()
+	if p.closed {
+		p.mu.Unlock()
+		return ErrClosed
+	}
+	p.queue = append(p.queue, waiting{urgent: true, done: func(_ uint64, err error) { done <- err }})
+	p.mu.Unlock()
+	p.poke()
+	select {
+	case err := <-done:
+		return err
+	case <-ctx.Done():
+		return ctx.Err()
+	}
+}
+
+func (p *partition) poke() {
+	select {
+	case p.wake <- struct{}{}:
+	default:
+	}
+}
+
+func (p *partition) close() {
+	p.mu.Lock()
+	p.closed = true
+	p.mu.Unlock()
+	p.poke()
+}
+
+// run is the committer.
+func (p *partition) run() {
+	defer close(p.idle)
+	for {
+		batch, closed := p.take()
+		if len(batch) == 0 {
+			if closed {
+				return
+			}
+			select {
+			case <-p.wake:
+			case <-p.j.ended.Done():
+				p.close()
+			}
+			continue
+		}
+		p.serve(batch)
+	}
+}
+
+// take takes what makes one pack off the queue.
+func (p *partition) take() (batch []waiting, closed bool) {
+	p.mu.Lock()
+	defer p.mu.Unlock()
+	size, n := 0, 0
+	for n < len(p.queue) && (n == 0 || size+partBytes+len(p.queue[n].part.data) <= maxPack) {
+		size += partBytes + len(p.queue[n].part.data)
+		p.bytes -= len(p.queue[n].part.data)
+		n++
+	}
+	batch = append(batch, p.queue[:n]...)
+	clear(p.queue[:n])
+	if p.queue = p.queue[n:]; len(p.queue) == 0 {
+		p.queue = nil
+	}
+	p.taken = n
+	return batch, p.closed
+}
+
+// serve commits a batch and tells who waits for it. What there is no room for is
+// left out, with all else of its lines.
+func (p *partition) serve(batch []waiting) {
+	refusal := p.j.full(0)
+	var urgent error
+	if refusal != nil {
+		urgent = p.j.full(1)
+	}
+	kept := batch[:0:0]
+	var left []waiting
+	broken := map[*Line]error{}
+	for _, w := range batch {
+		err := refusal
+		if w.urgent {
+			err = urgent
+		}
+		if w.line != nil && broken[w.line] != nil {
+			err = broken[w.line]
+		}
+		if err != nil {
+			if w.line != nil {
+				broken[w.line] = err
+			}
+			left = append(left, w)
+			continue
+		}
+		kept = append(kept, w)
+	}
+	if len(left) > 0 {
+		p.refuse(left, broken, refusal)
+	}
+	if len(kept) == 0 {
+		p.settled(nil, 0)
+		return
+	}
+	if err := p.commit(p.j.ended, kept); err != nil {
+		broken := map[*Line]error{}
+		for _, w := range kept {
+			if w.line != nil {
+				broken[w.line] = err
+			}
+		}
+		p.settled(err, 0)
+		p.refuse(kept, broken, err)
+		return
+	}
+	p.settled(nil, len(kept))
+	for _, w := range kept {
+		if w.done != nil {
+			w.done(p.pack.number, nil)
+		}
+	}
+}
+
+func (p *partition) settled(err error, n int) {
+	p.j.records.Add(uint64(n))
+	p.mu.Lock()
+	defer p.mu.Unlock()
+	p.down, p.taken = err, 0
+}
+
+// refuse tells of parts that were left out, and of all else of their lines that
+// waits.
+func (p *partition) refuse(parts []waiting, broken map[*Line]error, err error) {
+	p.mu.Lock()
+	for l, e := range broken {
+		l.broken = e
+	}
+	var rest []waiting
+	for _, w := range p.queue {
+		if w.line != nil && broken[w.line] != nil {
+			parts = append(parts, w)
+			p.bytes -= len(w.part.data)
+		} else {
+			rest = append(rest, w)
+		}
+	}
+	p.queue = rest
+	p.mu.Unlock()
+	for _, w := range parts {
+		if w.done == nil {
+			continue
+		}
+		p.j.refused.Add(1)
+		e := err
+		if w.line != nil {
+			e = broken[w.line]
+		}
+		w.done(0, e)
+	}
+}

@@ -1,0 +1,254 @@
+package server
+
+import (
+	"context"
+	"encoding/json"
+	"fmt"
+	"runtime"
+	"runtime/debug"
+	"slices"
+	"strings"
+	"sync"
+	"time"
+
+	"google.golang.org/protobuf/proto"
+
+	"leadline/engine/journal"
+	"leadline/engine/sensor"
+	"leadline/engine/session"
+	leadlinev1 "leadline/proto/leadline/v1"
+)
+
+// history is what the journal holds of one drive.
+type history struct {
+	place   journal.Place
+	opened  openedRecord
+	open    *leadlinev1.Open // nil: its beginning is not there
+	records []journal.Record // to be taken, after the checkpoint if there is one
+	check   *checkpointRecord
+	state   []byte // of the checkpoint: the session
+	whole   bool   // from the drive's beginning on
+	first   uint64 // number of the first record that was there
+	last    uint64
+	dropped bool
+	damage  []journal.Damage
+}
+
+func (h *history) vehicle() string { return h.open.GetHeader().GetVehicle() }
+
+// histories collects what is read, by line.
+type histories struct {
+	build string
+	of    map[journal.Place]*history
+}
+
+// take takes one record.
+func (c *histories) take(r journal.Record) error {
+	h := c.of[r.Place]
+	if h == nil {
+		h = &history{place: r.Place, first: r.Number}
+		c.of[r.Place] = h
+	}
+	h.last = r.Number
+	switch r.Kind {
+	case kindOpened:
+		if err := h.begin(r.Data); err != nil {
+			return fmt.Errorf("journal: record %d of %v: %w", r.Number, r.Place, err)
+		}
+		h.whole = true
+	case kindDropped:
+		h.dropped, h.records, h.state = true, nil, nil
+	case kindCheckpoint:
+		return c.checkpoint(h, r)
+	case kindBatch, kindMeasurement, kindEnd:
+		r.Data = slices.Clone(r.Data)
+		h.records = append(h.records, r)
+	default:
+		return fmt.Errorf("journal: record %d of %v has kind %d, which this version does not know: use the version that wrote it", r.Number, r.Place, r.Kind)
+	}
+	return nil
+}
+
+func (h *history) begin(data []byte) error {
+	if err := json.Unmarshal(data, &h.opened); err != nil {
+		return fmt.Errorf("what the drive began with cannot be read: %w", err)
+	}
+	h.open = new(leadlinev1.Open)
+	if err := proto.Unmarshal(h.opened.Open, h.open); err != nil {
+		return fmt.Errorf("what the drive began with cannot be read: %w", err)
+	}
+	return nil
+}
+
+// lost says why what is there does not make the drive; "" if it does.
+func (h *history) lost() string {
+	if h.open == nil {
+		return fmt.Sprintf("its records before number %d are gone, and no checkpoint holds them", h.first)
+	}
+	var parts []string
+	for _, d := range h.damage {
+		if h.check == nil || d.To > h.check.After {
+			parts = append(parts, d.String())
+		}
+	}
+	return strings.Join(parts, "; ")
+}
+
+// openJournal opens the journal and goes on with the drives that it holds.
+func (s *Server) openJournal() error {
+	c := &histories{build: s.cfg.Build, of: map[journal.Place]*history{}}
+	began := time.Now()
+	o := *s.cfg.Journal
+	o.Log = s.cfg.Log
+	j, found, err := journal.Open(context.Background(), o, c.take)
+	if err != nil {
+		return err
+	}
+	s.journal = j
+	newest := map[string]*history{}
+	var old []*history
+	for _, d := range found.Damage {
+		s.cfg.Log.Error("journal is damaged", "what", d.String())
+		if h := c.of[d.Place]; h != nil {
+			h.damage = append(h.damage, d)
+		}
+	}
+	for _, h := range c.of {
+		switch {
+		case h.dropped:
+			j.Line(h.place).Release()
+			continue
+		case h.open == nil:
+			s.cfg.Log.Error("drive of the journal is lost", "line", h.place.String(), "why", h.lost())
+			continue
+		}
+		if n := newest[h.vehicle()]; n == nil || n.place.Line < h.place.Line {
+			newest[h.vehicle()], h = h, n
+		}
+		if h != nil { // replaced by a later one
+			old = append(old, h)
+		}
+	}
+	for _, h := range old {
+		s.dropLine(j.Line(h.place))
+	}
+	s.restoreAll(newest)
+	st := j.State()
+	s.cfg.Log.Info("journal opened", "where", st.Where, "epoch", st.Epoch, "partitions", st.Partitions, "records", found.Records, "bytes", found.Bytes,
+		"drives", len(s.owners), "kept", len(s.kept), "seconds", time.Since(began).Seconds())
+	return nil
+}
+
+// restoreAll goes on with drives, several at once.
+func (s *Server) restoreAll(of map[string]*history) {
+	todo := make(chan *history)
+	var workers sync.WaitGroup
+	for range runtime.GOMAXPROCS(0) {
+		workers.Go(func() {
+			for h := range todo {
+				s.restore(h)
+			}
+		})
+	}
+	for _, h := range of {
+		todo <- h
+	}
+	close(todo)
+	workers.Wait()
+}
+
+// restore goes on with a drive, or keeps it aside with the reason why not.
+func (s *Server) restore(h *history) {
+	o, err := s.revive(h)
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	if err != nil {
+		s.cfg.Log.Error("drive cannot go on", "vehicle", h.vehicle(), "drive", h.open.GetDrive(), "error", err)
+		s.kept[h.vehicle()] = &kept{h, err}
+		return
+	}
+	delete(s.kept, h.vehicle())
+	s.owners[h.vehicle()] = o
+	s.ended.Add(1)
+	go o.run()
+}
+
+// kept is a drive of the journal that cannot go on, and why.
+type kept struct {
+	*history
+	err error
+}
+
+// revive makes the owner of a drive as it was.
+func (s *Server) revive(h *history) (o *owner, err error) {
+	on := about{"vehicle": h.vehicle(), "drive": h.open.GetDrive(), "map": h.open.GetHeader().GetMap()}
+	if lost := h.lost(); lost != "" {
+		return nil, refuse(leadlinev1.Reason_REASON_JOURNAL_DAMAGED, on, "drive %q of vehicle %q is damaged in the server's journal: %s: open another drive, with replace", h.open.GetDrive(), h.vehicle(), lost)
+	}
+	m := s.atlas.acquireFingerprint(h.open.GetHeader().GetMap(), h.opened.Fingerprint)
+	if m == nil {
+		return nil, refuse(leadlinev1.Reason_REASON_UNKNOWN_MAP, on, "drive %q of vehicle %q is in the server's journal and its map is not here: %q with the fingerprint %s: start the server with that map, or open another drive, with replace",
+			h.open.GetDrive(), h.vehicle(), h.open.GetHeader().GetMap(), h.opened.Fingerprint)
+	}
+	defer func() {
+		if r := recover(); r != nil {
+			s.cfg.Log.Error("session failed", "vehicle", h.vehicle(), "panic", r, "stack", string(debug.Stack()))
+			err = refuse(leadlinev1.Reason_REASON_SESSION_FAILED, on, "the session of vehicle %q failed while it was restored: report it with the server's log, and open another drive, with replace", h.vehicle())
+		}
+		if err != nil {
+			s.releaseMap(m)
+		}
+	}()
+	suite, err := s.suiteOf(h, m)
+	if err != nil {
+		return nil, refuse(leadlinev1.Reason_REASON_JOURNAL_DAMAGED, on, "drive %q of vehicle %q: its suite in the journal: %v", h.open.GetDrive(), h.vehicle(), err)
+	}
+	wh, err := headerOf(h.open)
+	if err != nil {
+		return nil, refuse(leadlinev1.Reason_REASON_JOURNAL_DAMAGED, on, "drive %q of vehicle %q: its header in the journal: %v", h.open.GetDrive(), h.vehicle(), err)
+	}
+	beside := &searches{slots: s.searching}
+	cfg := session.Config{
+		Vehicle: h.vehicle(), Space: m.Space, Names: m.Names, Suite: suite,
+		Start: start(wh.Start), MaxCells: h.opened.MaxCells, Begin: beside.begin,
+	}
+	o, err = s.replay(h, m, cfg, beside)
+	if err != nil {
+		return nil, err
+	}
+	o.log.Info("drive restored", "map", m.Name, "after_batch", o.sequence, "replayed", len(h.records), "ended", o.ended)
+	return o, nil
+}
+
+// suiteOf is the suite that a drive began with: that of its name, if it still
+// says the same.
+func (s *Server) suiteOf(h *history, m *mapUse) (*sensor.Suite, error) {
+	if h.opened.Suite == "" {
+		return nil, nil
+	}
+	name := h.open.GetHeader().GetSuite()
+	if now, err := s.suiteText(name, m); err == nil && now == h.opened.Suite {
+		return s.cfg.Suites[name], nil
+	}
+	return sensor.ParseSuite(name, []byte(h.opened.Suite))
+}
+
+// acquireFingerprint is acquire for the map of a fingerprint, under its name
+// before any other.
+func (a *atlas) acquireFingerprint(name, fingerprint string) *mapUse {
+	a.mu.Lock()
+	defer a.mu.Unlock()
+	found := a.current[name]
+	if found == nil || found.Space.Fingerprint() != fingerprint {
+		found = nil
+		for _, m := range a.current {
+			if m.Space.Fingerprint() == fingerprint && (found == nil || m.Name < found.Name) {
+				found = m
+			}
+		}
+	}
+	if found != nil {
+		found.sessions++
+	}
+	return found
+}
