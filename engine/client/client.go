@@ -15,10 +15,12 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"sync/atomic"
 	"time"
 
 	"google.golang.org/genproto/googleapis/rpc/errdetails"
 	"google.golang.org/grpc"
+	"google.golang.org/grpc/backoff"
 	"google.golang.org/grpc/codes"
 	"google.golang.org/grpc/keepalive"
 	"google.golang.org/grpc/status"
@@ -47,6 +49,11 @@ func dialOptions() []grpc.DialOption {
 	return []grpc.DialOption{
 		grpc.WithDefaultCallOptions(grpc.MaxCallRecvMsgSize(maxMessage)),
 		grpc.WithKeepaliveParams(keepalive.ClientParameters{Time: 30 * time.Second, Timeout: 10 * time.Second}),
+		// A server that is started again is found soon.
+		grpc.WithConnectParams(grpc.ConnectParams{
+			Backoff:           backoff.Config{BaseDelay: shortestWait, Multiplier: 1.6, Jitter: 0.3, MaxDelay: longestWait},
+			MinConnectTimeout: 5 * time.Second,
+		}),
 	}
 }
 
@@ -62,6 +69,10 @@ type Drive struct {
 	Continue bool
 	// Replace gives up another drive that the vehicle has not finished.
 	Replace bool
+	// Acknowledged is the highest batch for which a feed of the same drive had a
+	// receipt that said durable, 0 for none: a server that has less is then an
+	// error (JOURNAL_DAMAGED), since it has lost what it acknowledged.
+	Acknowledged uint64
 	// Batch is the number of measurements sent together, at most what the
 	// server takes; 0 is 64. Window is the number of batches that may be
 	// unacknowledged; 0 is 16.
@@ -92,10 +103,11 @@ type Feed struct {
 	have   uint64        // sequence of the last batch that the server had at the start
 	window chan struct{} // one token a batch without receipt
 
-	done         chan struct{} // closed when nothing more is received; then:
-	acknowledged uint64        // sequence of the last batch with a receipt
-	closed       *leadlinev1.Closed
-	err          error
+	receipts, durable atomic.Uint64 // the last batch with a receipt, and with one that said durable
+
+	done   chan struct{} // closed when nothing more is received; then:
+	closed *leadlinev1.Closed
+	err    error
 }
 
 // Open opens a drive and waits until the server has taken it. The feed ends
@@ -121,13 +133,15 @@ func Open(ctx context.Context, conn grpc.ClientConnInterface, d Drive) (*Feed, e
 	}
 	d.Batch = min(d.Batch, int(opened.GetMaxBatch()))
 	f := &Feed{
-		drive: d, stream: stream, cancel: cancel, have: opened.GetSequence(), acknowledged: opened.GetSequence(),
+		drive: d, stream: stream, cancel: cancel, have: opened.GetSequence(),
 		most:   int(opened.GetMaxMessageBytes()) - overhead,
 		window: make(chan struct{}, d.Window), done: make(chan struct{}),
 	}
 	if d.Continue {
 		f.sent = f.have
 	}
+	f.receipts.Store(f.have)
+	f.durable.Store(d.Acknowledged)
 	go f.receive()
 	return f, nil
 }
@@ -137,7 +151,7 @@ func open(ctx context.Context, conn grpc.ClientConnInterface, d Drive) (*leadlin
 	if err != nil {
 		return nil, nil, err
 	}
-	req := &leadlinev1.Open{Header: d.Header, Drive: d.Name, Replace: d.Replace, Reply: d.Reply}
+	req := &leadlinev1.Open{Header: d.Header, Drive: d.Name, Replace: d.Replace, Reply: d.Reply, Acknowledged: d.Acknowledged}
 	// An error of Send is told by Recv.
 	_ = stream.Send(&leadlinev1.FeedRequest{Message: &leadlinev1.FeedRequest_Open{Open: req}})
 	m, err := stream.Recv()
@@ -224,6 +238,10 @@ func (f *Feed) Ended() *leadlinev1.Closed {
 // feed began: 0 is a drive that is new there.
 func (f *Feed) Had() uint64 { return f.have }
 
+// Acknowledged returns the highest batch that the server has, with all before it,
+// and the highest that it has durably: for Drive.Acknowledged.
+func (f *Feed) Acknowledged() (batch, durable uint64) { return f.receipts.Load(), f.durable.Load() }
+
 // endedElsewhere is what the server would say to another batch.
 func (f *Feed) endedElsewhere() error {
 	st := status.Newf(codes.FailedPrecondition, "drive %q was ended at the server and not by this feed: what it has not acknowledged is not part of it", f.drive.Name)
@@ -245,7 +263,7 @@ func (f *Feed) Close() (*leadlinev1.Closed, error) {
 	if err == nil {
 		select {
 		case <-f.done: // ended by the server, before it was asked to
-			if f.closed == nil || f.acknowledged < f.sent {
+			if f.closed == nil || f.receipts.Load() < f.sent {
 				return nil, f.failure()
 			}
 			return f.closed, nil
@@ -317,7 +335,12 @@ func (f *Feed) receive() {
 					f.drive.OnRefusal(r)
 				}
 			}
-			f.acknowledged = max(f.acknowledged, k.Receipt.GetSequence())
+			if n := k.Receipt.GetSequence(); n > f.receipts.Load() {
+				f.receipts.Store(n)
+				if k.Receipt.GetDurable() {
+					f.durable.Store(n)
+				}
+			}
 			for ; last < k.Receipt.GetSequence() && len(f.window) > 0; last++ {
 				<-f.window
 			}

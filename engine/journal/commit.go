@@ -19,7 +19,8 @@ func (p *partition) commit(ctx context.Context, batch []waiting) error {
 	p.mu.Unlock()
 	next.number++
 	numbers := map[*Line]uint64{}
-	for _, w := range batch {
+	for i := range batch {
+		w := &batch[i]
 		if w.line == nil {
 			continue
 		}

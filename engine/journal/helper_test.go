@@ -61,8 +61,8 @@ func (w testWriter) Write(b []byte) (int, error) {
 // put appends a record and waits until it is in.
 func put(l *Line, kind byte, data []byte) (pack uint64, err error) {
 	done := make(chan struct{})
-	l.Append(kind, data, false, func(p uint64, e error) {
-		pack, err = p, e
+	l.Append(kind, data, false, func(at At, e error) {
+		pack, err = at.Pack, e
 		close(done)
 	})
 	<-done

@@ -12,6 +12,9 @@ type Record struct {
 	Data         []byte
 }
 
+// At is where a record is: its pack in the partition, and its number in the line.
+type At struct{ Pack, Number uint64 }
+
 // Place names a line.
 type Place struct {
 	Partition int
@@ -35,12 +38,12 @@ type Line struct {
 func (l *Line) Place() Place { return Place{l.p.index, l.id} }
 
 // Append puts a record into the queue of its partition. Once it is durable, or
-// refused, done is called with the pack that it is in, or why; it must not wait
-// for anything. The calls for one line come in its order. After one with an
+// refused, done is called with where it is, or why; it must not wait for
+// anything. The calls for one line come in its order. After one with an
 // error all that follow have it, too, until Mend.
 //
 // Of a record that is urgent, since it lets others go, less room is asked.
-func (l *Line) Append(kind byte, data []byte, urgent bool, done func(pack uint64, err error)) {
+func (l *Line) Append(kind byte, data []byte, urgent bool, done func(At, error)) {
 	l.p.append(l, kind, data, urgent, done)
 }
 

@@ -35,7 +35,7 @@ type waiting struct {
 	line   *Line
 	part   part
 	urgent bool
-	done   func(pack uint64, err error) // of the last part
+	done   func(At, error) // of the last part
 }
 
 // indexed is where a pack is at the broker: of one in indexEvery.
@@ -53,7 +53,7 @@ func newPartition(j *Journal, i int) *partition {
 	}
 }
 
-func (p *partition) append(l *Line, kind byte, data []byte, urgent bool, done func(uint64, error)) {
+func (p *partition) append(l *Line, kind byte, data []byte, urgent bool, done func(At, error)) {
 	p.mu.Lock()
 	err := l.broken
 	switch {
@@ -68,7 +68,7 @@ func (p *partition) append(l *Line, kind byte, data []byte, urgent bool, done fu
 		l.broken = err
 		p.mu.Unlock()
 		p.j.refused.Add(1)
-		done(0, err)
+		done(At{}, err)
 		return
 	}
 	if l != nil {
@@ -79,7 +79,7 @@ func (p *partition) append(l *Line, kind byte, data []byte, urgent bool, done fu
 }
 
 // push puts a record into the queue, in parts.
-func (p *partition) push(l *Line, kind byte, data []byte, urgent bool, done func(uint64, error)) {
+func (p *partition) push(l *Line, kind byte, data []byte, urgent bool, done func(At, error)) {
 	p.bytes += len(data)
 	for parts := byte(firstPart); ; parts = 0 {
 		w := waiting{line: l, part: part{kind: kind, parts: parts, line: l.id, data: data}, urgent: urgent}
@@ -103,7 +103,7 @@ func (p *partition) header(ctx context.Context) error {
 		p.mu.Unlock()
 		return ErrClosed
 	}
-	p.queue = append(p.queue, waiting{urgent: true, done: func(_ uint64, err error) { done <- err }})
+	p.queue = append(p.queue, waiting{urgent: true, done: func(_ At, err error) { done <- err }})
 	p.mu.Unlock()
 	p.poke()
 	select {
@@ -216,7 +216,7 @@ func (p *partition) serve(batch []waiting) {
 	p.settled(nil, len(kept))
 	for _, w := range kept {
 		if w.done != nil {
-			w.done(p.pack.number, nil)
+			w.done(At{p.pack.number, w.part.number}, nil)
 		}
 	}
 }
@@ -255,6 +255,6 @@ func (p *partition) refuse(parts []waiting, broken map[*Line]error, err error) {
 		if w.line != nil {
 			e = broken[w.line]
 		}
-		w.done(0, e)
+		w.done(At{}, e)
 	}
 }

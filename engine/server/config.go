@@ -25,6 +25,9 @@ type Config struct {
 	Suites map[string]*sensor.Suite
 	// NewSession makes a session; nil is session.New.
 	NewSession func(session.Config) (Session, error)
+	// RestoreSession makes one from what its Checkpoint wrote; nil is
+	// session.Restore, where NewSession is nil, too.
+	RestoreSession func(session.Config, []byte) (Session, error)
 	// MaxCells is session.Config.MaxCells.
 	MaxCells int
 	Limits   Limits

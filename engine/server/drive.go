@@ -222,5 +222,7 @@ func (o *owner) closing() *leadlinev1.Closed {
 
 // message converts a posterior as of now.
 func (o *owner) message(p *summary.Posterior) *leadlinev1.Posterior {
-	return o.srv.message(p, o.vehicle, o.m.Map, o.malformed, o.srv.cfg.Now())
+	m := o.srv.message(p, o.vehicle, o.m.Map, o.malformed, o.srv.cfg.Now())
+	m.Recomputed = o.subject.recomputed
+	return m
 }

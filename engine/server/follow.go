@@ -231,6 +231,7 @@ func (s *Server) followed(f *follower, u *update) *leadlinev1.FollowResponse {
 	switch n := u.posterior; {
 	case n != nil:
 		p := s.message(n.p, u.of.vehicle, u.of.onMap, n.malformed, s.cfg.Now())
+		p.Recomputed = u.of.recomputed
 		if d := f.request.GetDetail(); d == leadlinev1.Detail_DETAIL_UNSPECIFIED || d == leadlinev1.Detail_DETAIL_SUMMARY {
 			p.Modes, p.Edges, p.Evidence = nil, nil, nil
 		}

@@ -33,6 +33,7 @@ type hub struct {
 type subject struct {
 	vehicle, drive string
 	onMap          Map
+	recomputed     bool          // see Posterior.recomputed
 	lateNS         int64         // how late a posterior may be withdrawn
 	poke           chan struct{} // of one: asks the owner to call present
 	recent         recent

@@ -163,6 +163,9 @@ func TestRestart(t *testing.T) {
 				cancel()
 			}
 			l.stop(ctx)
+			if starts == 2 {
+				l.cfg.Build = "that" // takes all again
+			}
 			f.Abort()
 			cancel()
 			conn.Close()
@@ -174,7 +177,7 @@ func TestRestart(t *testing.T) {
 			t.Fatal(err)
 		}
 		before, err := where(t, conn, &leadlinev1.WhereRequest{Vehicles: []string{"v"}})
-		if err != nil || !before.GetPosterior().GetDurable() {
+		if err != nil || !before.GetPosterior().GetDurable() || !before.GetPosterior().GetRecomputed() {
 			t.Errorf("a restored drive is at %v, %v", before, err)
 		}
 		closed, err := fed(limited(t), conn, client.Drive{Header: header("v"), Name: "d", Batch: 1}, evs)

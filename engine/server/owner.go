@@ -179,7 +179,9 @@ func (o *owner) leave() {
 		o.farewell(false, "", why)
 		o.clearAlarms("the drive was dropped: " + why)
 	}
-	if !errors.Is(o.err, errStopping) {
+	if errors.Is(o.err, errStopping) {
+		o.lastCheckpoint()
+	} else {
 		o.srv.dropLine(o.rec.line)
 	}
 	o.srv.hub.forget(o.subject)

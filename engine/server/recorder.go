@@ -48,12 +48,7 @@ type recorder struct {
 	opened  openedRecord
 	waiting []entry // in order
 	failed  bool    // what waits was refused
-	// pack is where the last record is that the session has taken, since is how
-	// many it has taken since the checkpoint, and when that was.
-	pack, since   uint64
-	checkpointed  time.Time
-	checkpointing bool
-	pressed       bool
+	checks  checks
 
 	poke    chan struct{} // holds a token when results have come
 	mu      sync.Mutex
@@ -68,8 +63,8 @@ type entry struct {
 }
 
 type result struct {
-	pack uint64
-	err  error
+	at  journal.At
+	err error
 }
 
 // windowBatches is how many batches of a drive may be on their way to the
@@ -78,6 +73,17 @@ const windowBatches = 4
 
 func newRecorder(line *journal.Line) *recorder {
 	return &recorder{line: line, poke: make(chan struct{}, 1)}
+}
+
+// recordIn has an owner record in a line.
+func (o *owner) recordIn(l *journal.Line) {
+	r := newRecorder(l)
+	r.checks.last = o.srv.cfg.Now()
+	l.OnPressed(func() {
+		r.checks.pressed.Store(true)
+		r.wake()
+	})
+	o.rec = r
 }
 
 // busy reports whether something is on its way, and full whether nothing more
@@ -115,10 +121,14 @@ func (o *owner) after(done func()) {
 }
 
 // arrived is called by the journal.
-func (r *recorder) arrived(pack uint64, err error) {
+func (r *recorder) arrived(at journal.At, err error) {
 	r.mu.Lock()
-	r.results = append(r.results, result{pack, err})
+	r.results = append(r.results, result{at, err})
 	r.mu.Unlock()
+	r.wake()
+}
+
+func (r *recorder) wake() {
 	select {
 	case r.poke <- struct{}{}:
 	default:
@@ -139,8 +149,7 @@ func (o *owner) settle() {
 			r.failed = true
 			e.fail(x.err)
 		} else {
-			r.pack = x.pack
-			r.since++
+			r.checks.took(x.at)
 			e.done()
 		}
 		for len(r.waiting) > 0 && !r.waiting[0].recorded {
@@ -148,6 +157,9 @@ func (o *owner) settle() {
 			r.waiting = r.waiting[1:]
 			e.done()
 		}
+	}
+	if r.line != nil && o.checkpointDue() {
+		o.checkpoint(nil)
 	}
 	if len(r.waiting) > 0 {
 		return
@@ -213,7 +225,7 @@ func (s *Server) record(o *owner, opened openedRecord) {
 		delete(s.kept, o.vehicle)
 		s.dropLine(s.journal.Line(k.place))
 	}
-	o.rec = newRecorder(s.journal.Begin(o.vehicle))
+	o.recordIn(s.journal.Begin(o.vehicle))
 	o.recordOpening(opened)
 }
 
@@ -293,7 +305,7 @@ func (s *Server) dropLine(l *journal.Line) {
 	if l == nil {
 		return
 	}
-	l.Append(kindDropped, nil, true, func(_ uint64, err error) {
+	l.Append(kindDropped, nil, true, func(_ journal.At, err error) {
 		if err == nil {
 			l.Release()
 		}
@@ -326,7 +338,6 @@ func (o *owner) again(r journal.Record) error {
 	case kindEnd:
 		o.closing()
 	}
-	o.rec.pack = r.Pack
-	o.rec.since++
+	o.rec.checks.took(journal.At{Pack: r.Pack, Number: r.Number})
 	return nil
 }

@@ -16,6 +16,7 @@ import (
 	"leadline/engine/journal"
 	"leadline/engine/sensor"
 	"leadline/engine/session"
+	"leadline/engine/wire"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
@@ -52,8 +53,13 @@ func (c *histories) take(r journal.Record) error {
 	h.last = r.Number
 	switch r.Kind {
 	case kindOpened:
-		if err := h.begin(r.Data); err != nil {
-			return fmt.Errorf("journal: record %d of %v: %w", r.Number, r.Place, err)
+		var opened openedRecord
+		err := json.Unmarshal(r.Data, &opened)
+		if err == nil {
+			err = h.begin(opened)
+		}
+		if err != nil {
+			return fmt.Errorf("journal: record %d of %v: what the drive began with cannot be read: %w", r.Number, r.Place, err)
 		}
 		h.whole = true
 	case kindDropped:
@@ -69,15 +75,9 @@ func (c *histories) take(r journal.Record) error {
 	return nil
 }
 
-func (h *history) begin(data []byte) error {
-	if err := json.Unmarshal(data, &h.opened); err != nil {
-		return fmt.Errorf("what the drive began with cannot be read: %w", err)
-	}
-	h.open = new(leadlinev1.Open)
-	if err := proto.Unmarshal(h.opened.Open, h.open); err != nil {
-		return fmt.Errorf("what the drive began with cannot be read: %w", err)
-	}
-	return nil
+func (h *history) begin(opened openedRecord) error {
+	h.opened, h.open = opened, new(leadlinev1.Open)
+	return proto.Unmarshal(opened.Open, h.open)
 }
 
 // lost says why what is there does not make the drive; "" if it does.
@@ -203,7 +203,7 @@ func (s *Server) revive(h *history) (o *owner, err error) {
 	if err != nil {
 		return nil, refuse(leadlinev1.Reason_REASON_JOURNAL_DAMAGED, on, "drive %q of vehicle %q: its suite in the journal: %v", h.open.GetDrive(), h.vehicle(), err)
 	}
-	wh, err := headerOf(h.open)
+	wh, err := wire.ToHeader(h.open.GetHeader())
 	if err != nil {
 		return nil, refuse(leadlinev1.Reason_REASON_JOURNAL_DAMAGED, on, "drive %q of vehicle %q: its header in the journal: %v", h.open.GetDrive(), h.vehicle(), err)
 	}

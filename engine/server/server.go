@@ -62,6 +62,7 @@ func New(cfg Config) (*Server, error) {
 	cfg.Limits = cfg.Limits.withDefaults()
 	if cfg.NewSession == nil {
 		cfg.NewSession = func(c session.Config) (Session, error) { return session.New(c) }
+		cfg.RestoreSession = func(c session.Config, b []byte) (Session, error) { return session.Restore(c, b) }
 	}
 	if cfg.Now == nil {
 		cfg.Now = time.Now

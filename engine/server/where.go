@@ -177,6 +177,7 @@ func (s *Server) toNow(ctx context.Context, o *owner, r *reply, q *question) (m 
 		return nil, refuse(leadlinev1.Reason_REASON_NO_POSTERIOR, o.about(), "where: predict_to_now: vehicle %q: %v: leave predict_to_now out", o.vehicle, err)
 	}
 	m = s.message(p, o.vehicle, o.m.Map, r.malformed, now)
+	m.Recomputed = o.subject.recomputed
 	m.PredictedS = sensor.Time(p.TimeNS).Seconds(last)
 	return m, more(m, r.ahead, q)
 }

@@ -27,6 +27,7 @@ type aside struct {
 	// its way, nil for none, and searched when the last one came in.
 	woke, searched sensor.Time
 	search         *search
+	named          int // the search of a checkpoint, by its number from 1
 }
 
 func (a *aside) on() float64 { return 1 - a.off - a.lost }

@@ -31,7 +31,9 @@ const (
 type search struct {
 	found *Session // what wait leaves: the belief at the time of the alarm
 	wait  func()   // until it is done
-	enter sensor.Time
+	// What it is made of: the events up to a time, and when it enters.
+	events       []sensor.Event
+	until, enter sensor.Time
 }
 
 // keepPast keeps events that the log drops, for searches; in large bites.
@@ -68,9 +70,13 @@ func (s *Session) look() {
 func (s *Session) begins() *search {
 	st := &s.state
 	from := max(st.time-sensor.Time(searchBackS*1e9), st.aside.woke)
-	found := s.anywhere(s.events(from, st.time))
-	x := &search{found: found, enter: st.time + sensor.Time(enterAfterS*1e9)}
-	until := st.time
+	return s.search(s.events(from, st.time), st.time, st.time+sensor.Time(enterAfterS*1e9))
+}
+
+// search makes one over events up to a time, and has it run.
+func (s *Session) search(events []sensor.Event, until, enter sensor.Time) *search {
+	found := s.anywhere(events)
+	x := &search{found: found, events: events, until: until, enter: enter}
 	work := func() { found.runUntil(until) }
 	if s.beginWork == nil {
 		done := false

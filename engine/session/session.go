@@ -181,6 +181,25 @@ type Session struct {
 
 // New starts a session. An error says what is wrong with the configuration.
 func New(c Config) (*Session, error) {
+	s, err := prepare(c)
+	if err != nil {
+		return nil, err
+	}
+	b, err := filter.Seed(c.Space, c.Start.prior(c.Space.Frame()), s.suite.Quantities(s.dim), s.maxCells)
+	if errors.Is(err, filter.ErrNowhere) {
+		return nil, errors.New("start: it does not touch the map: check its coordinates (longitude first) and the map's extent")
+	}
+	if err != nil {
+		return nil, err
+	}
+	s.state.belief = b
+	s.state.monitor = monitor.New(s.suite.Vehicle.FalseAlarmH * 3600)
+	s.setRates()
+	return s, nil
+}
+
+// prepare makes a session without a belief.
+func prepare(c Config) (*Session, error) {
 	if c.Space == nil {
 		return nil, errors.New("session: no map")
 	}
@@ -225,16 +244,6 @@ func New(c Config) (*Session, error) {
 	if s.dim == 2 && len(s.suite.Quantities(s.dim)) == 0 {
 		s.maxCells = PointsPerGaussian * min(s.maxCells, math.MaxInt/PointsPerGaussian)
 	}
-	b, err := filter.Seed(c.Space, c.Start.prior(c.Space.Frame()), s.suite.Quantities(s.dim), s.maxCells)
-	if errors.Is(err, filter.ErrNowhere) {
-		return nil, errors.New("start: it does not touch the map: check its coordinates (longitude first) and the map's extent")
-	}
-	if err != nil {
-		return nil, err
-	}
-	s.state.belief = b
-	s.state.monitor = monitor.New(v.FalseAlarmH * 3600)
-	s.setRates()
 	return s, nil
 }
 

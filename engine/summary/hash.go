@@ -2,11 +2,17 @@ package summary
 
 import (
 	"crypto/sha256"
+	"encoding"
 	"encoding/binary"
 	"encoding/hex"
+	"fmt"
 	"hash"
 	"math"
+
+	"leadline/engine/exact"
 )
+
+var _ exact.Coded = (*Hasher)(nil)
 
 // Hasher sums up final posteriors in event order: SHA-256 over, for each,
 // little-endian
@@ -44,3 +50,22 @@ func (h *Hasher) Add(p *Posterior) {
 
 // Sum returns the hash so far in hexadecimal; more may be added after it.
 func (h *Hasher) Sum() string { return hex.EncodeToString(h.h.Sum(nil)) }
+
+// Code goes through the hasher, for exact copies.
+func (h *Hasher) Code(c *exact.Coder) {
+	var state []byte
+	if !c.Reading() {
+		var err error
+		if state, err = h.h.(encoding.BinaryMarshaler).MarshalBinary(); err != nil {
+			panic("summary: " + err.Error()) // a SHA-256 always can
+		}
+	}
+	c.Raw(&state)
+	if !c.Reading() || c.Err() != nil {
+		return
+	}
+	h.h = sha256.New()
+	if err := h.h.(encoding.BinaryUnmarshaler).UnmarshalBinary(state); err != nil {
+		c.Fail(fmt.Errorf("hash: %w", err))
+	}
+}

@@ -1,0 +1,255 @@
+package session
+
+import (
+	"encoding/binary"
+	"errors"
+	"fmt"
+	"hash/crc32"
+	"slices"
+
+	"leadline/engine/exact"
+	"leadline/engine/filter"
+	"leadline/engine/monitor"
+	"leadline/engine/sensor"
+	"leadline/engine/summary"
+)
+
+// A checkpoint is a session in bytes: who restores it goes on as if nothing had
+// been, to the same posteriors bit for bit. Little endian,
+//
+//	4  "LLS1"
+//	8  the layout: another one where anything in a session is made differently
+//	   the map's fingerprint, the vehicle, MaxCells, the session (engine/exact)
+//	4  CRC-32C of all before
+//
+// A search that is on its way is written as what it is made of, and begins anew.
+const checkpointMagic = "LLS1"
+
+// ErrLayout is the error of a checkpoint of another layout: of a version of this
+// program whose sessions are made differently.
+var ErrLayout = errors.New("the checkpoint is of another version of this program")
+
+var castagnoli = crc32.MakeTable(crc32.Castagnoli)
+
+// measurements are the kinds of measurements in checkpoints, by number.
+var measurements = []sensor.Measurement{
+	sensor.Travel{}, sensor.Turn{}, sensor.Displacement{}, sensor.BodyDisplacement{}, sensor.Speed{},
+	sensor.HeadingFix{}, sensor.Clearance{}, sensor.Sounding{}, sensor.Barometer{}, sensor.Range{}, sensor.Bearing{},
+	sensor.AcousticBearing{}, sensor.Fix{}, sensor.Sighting{}, sensor.Standstill{},
+}
+
+// layout is that of this program.
+var layout = func() uint64 {
+	parts := []any{Session{}, filter.Belief{}, monitor.Monitor{}, summary.Posterior{}, sensor.Event{}}
+	for _, m := range measurements {
+		parts = append(parts, m)
+	}
+	return exact.Layout(parts, filter.Workspace{}, sensor.Motion{}, filter.Cloud{}, filter.Columns{}, summary.Summarizer{}, sensor.Suite{})
+}()
+
+// Checkpoint returns the session in bytes.
+func (s *Session) Checkpoint() []byte {
+	c := exact.Writer()
+	s.code(c, nil)
+	b := append([]byte(checkpointMagic), make([]byte, 8)...)
+	binary.LittleEndian.PutUint64(b[4:], layout)
+	b = append(b, c.Bytes()...)
+	return binary.LittleEndian.AppendUint32(b, crc32.Checksum(b, castagnoli))
+}
+
+// Restore makes the session of a checkpoint. The configuration must be the one
+// that it began with; its start is not used. ErrLayout is the error of one of
+// another version; any other says what is wrong.
+func Restore(cfg Config, checkpoint []byte) (*Session, error) {
+	s, err := prepare(cfg)
+	if err != nil {
+		return nil, err
+	}
+	const head, tail = len(checkpointMagic) + 8, 4
+	n := len(checkpoint) - tail
+	if n < head || string(checkpoint[:4]) != checkpointMagic {
+		return nil, errors.New("session: this is no checkpoint")
+	}
+	if sum, want := crc32.Checksum(checkpoint[:n], castagnoli), binary.LittleEndian.Uint32(checkpoint[n:]); sum != want {
+		return nil, fmt.Errorf("session: the checkpoint is damaged: its checksum is %08x and should be %08x", sum, want)
+	}
+	if binary.LittleEndian.Uint64(checkpoint[4:]) != layout {
+		return nil, fmt.Errorf("session: %w", ErrLayout)
+	}
+	c := exact.Reader(checkpoint[head:n])
+	s.state.belief = &filter.Belief{Quantities: s.suite.Quantities(s.dim)}
+	s.setRates()
+	beside := s.state.aside.loose.Quantities
+	var found []recipe
+	s.code(c, &found)
+	if err := c.Done(); err != nil {
+		return nil, fmt.Errorf("session: the checkpoint is damaged: %w", err)
+	}
+	if err := s.sound(beside, len(found)); err != nil {
+		return nil, fmt.Errorf("session: the checkpoint is damaged: %w", err)
+	}
+	s.resume(found)
+	return s, nil
+}
+
+// recipe is what a search is made of.
+type recipe struct {
+	Events       []sensor.Event
+	Until, Enter sensor.Time
+}
+
+// code goes through the session. found gets the recipes of searches where it is
+// read; states then name them by their number in searchOf.
+func (s *Session) code(c *exact.Coder, found *[]recipe) {
+	exact.Kinds(c, measurements)
+	fingerprint, vehicle, maxCells := s.space.Fingerprint(), s.vehicle, s.maxCells
+	c.Text(&fingerprint)
+	c.Text(&vehicle)
+	c.Value(&maxCells)
+	if c.Err() == nil && (fingerprint != s.space.Fingerprint() || vehicle != s.vehicle || maxCells != s.maxCells) {
+		c.Fail(fmt.Errorf("it is of vehicle %q on map %s with %d cells, not of %q on %s with %d", vehicle, fingerprint, maxCells, s.vehicle, s.space.Fingerprint(), s.maxCells))
+	}
+	var searches []*search
+	if !c.Reading() {
+		searches = s.searches()
+		found = new([]recipe)
+		for _, x := range searches {
+			*found = append(*found, recipe{x.events, x.until, x.enter})
+		}
+	}
+	c.Value(found)
+	s.state.code(c, searches)
+	exact.Slice(c, &s.snaps, 32, func(n *snapshot) {
+		c.Value(&n.time)
+		n.state.code(c, searches)
+	})
+	s.log.code(c)
+	c.Value(&s.past)
+	recent, final := s.recent, s.final
+	if !c.Reading() && final > 1 { // one says until when what is told is final
+		recent, final = recent[final-1:], 1
+	}
+	c.Value(&recent)
+	c.Value(&final)
+	c.Value(&s.superseded)
+	s.hasher.Code(c)
+	exact.Slice(c, &s.leads, 8, func(l *lead) { l.code(c) })
+	c.Uint(&s.accepted)
+	c.Uint(&s.refused)
+	c.Bool(&s.begunOnce)
+	c.Value(&s.reached)
+	c.Bool(&s.flushed)
+	c.Value(&s.flushedAt)
+	c.Value(&s.widest)
+	if c.Reading() {
+		s.recent, s.final = recent, final
+	}
+}
+
+// searches are those on their way, of the session and of its snapshots.
+func (s *Session) searches() (out []*search) {
+	add := func(x *search) {
+		if x != nil && !slices.Contains(out, x) {
+			out = append(out, x)
+		}
+	}
+	add(s.state.aside.search)
+	for i := range s.snaps {
+		add(s.snaps[i].aside.search)
+	}
+	return out
+}
+
+// resume begins the searches anew that states name by their numbers.
+func (s *Session) resume(found []recipe) {
+	again := make([]*search, len(found))
+	for i, r := range found {
+		again[i] = s.search(r.Events, r.Until, r.Enter)
+	}
+	name := func(a *aside) {
+		if a.named > 0 {
+			a.search, a.named = again[a.named-1], 0
+		}
+	}
+	name(&s.state.aside)
+	for i := range s.snaps {
+		name(&s.snaps[i].aside)
+	}
+}
+
+func (st *state) code(c *exact.Coder, searches []*search) {
+	c.Bool(&st.begun)
+	c.Value(&st.time)
+	c.Value(&st.belief)
+	c.Float(&st.logEvidence)
+	c.Value(&st.pose)
+	c.Float(&st.gapAgeS)
+	c.Bool(&st.hasVelocity)
+	c.Value(&st.velocity)
+	c.Value(&st.bend)
+	c.Value(&st.pace.stretches)
+	c.Value(&st.speed)
+	c.Float(&st.odometerM)
+	c.Value(&st.evidence)
+	c.Float(&st.gapS)
+	c.Value(&st.posteriorAt)
+	c.Bool(&st.unread)
+	exact.Slice(c, &st.previous, 12, func(l *lastEvent) {
+		l.code(c)
+		c.Value(&l.time)
+		c.Float(&l.odometerM)
+	})
+	c.Uint(&st.processed)
+	c.Value(&st.monitor)
+	st.aside.code(c, searches)
+}
+
+func (a *aside) code(c *exact.Coder, searches []*search) {
+	c.Float(&a.off)
+	c.Value(&a.loose)
+	c.Float(&a.lost)
+	c.Float(&a.roadM)
+	c.Float(&a.quietS)
+	c.Bool(&a.alarm)
+	c.Value(&a.woke)
+	c.Value(&a.searched)
+	named := slices.Index(searches, a.search) + 1
+	c.Value(&named)
+	if c.Reading() {
+		a.named = named
+	}
+}
+
+func (v *voice) code(c *exact.Coder) {
+	c.Text(&v.sensor)
+	c.Text(&v.kind)
+	c.Text(&v.post)
+}
+
+func (l *log) code(c *exact.Coder) {
+	c.Value(&l.events)
+	c.Value(&l.next)
+	c.Value(&l.latest)
+	c.Bool(&l.heard)
+	exact.Slice(c, &l.sources, 3, func(s *source) {
+		c.Text(&s.name)
+		c.Value(&s.until)
+		c.Value(&s.events)
+	})
+	exact.Slice(c, &l.spoke, 2, func(s *spoken) {
+		c.Text(&s.sensor)
+		c.Value(&s.latest)
+	})
+	exact.Slice(c, &l.voices, 3, func(v *voice) { v.code(c) })
+}
+
+func (l *lead) code(c *exact.Coder) {
+	c.Text(&l.sensor)
+	c.Value(&l.held)
+	c.Bool(&l.wrong)
+	c.Value(&l.spoken)
+	c.Value(&l.alone)
+	c.Value(&l.from)
+	c.Value(&l.until)
+	c.Value(&l.since)
+}
