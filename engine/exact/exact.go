@@ -15,6 +15,7 @@ type Coder struct {
 	err     error
 	words   map[string]string // strings that were read, one copy of each
 	kinds   map[reflect.Type][]reflect.Type
+	coded   map[reflect.Type]bool // whether a type describes itself
 }
 
 // Coded is a type that describes itself: Code goes through its fields with c.

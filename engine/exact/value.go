@@ -27,16 +27,37 @@ func (c *Coder) Value(p any) { c.value(reflect.ValueOf(p).Elem()) }
 
 var coded = reflect.TypeFor[Coded]()
 
+// describes reports whether a struct describes itself: it is asked of every one.
+func (c *Coder) describes(t reflect.Type) bool {
+	does, known := c.coded[t]
+	if !known {
+		does = reflect.PointerTo(t).Implements(coded)
+		if c.coded == nil {
+			c.coded = map[reflect.Type]bool{}
+		}
+		c.coded[t] = does
+	}
+	return does
+}
+
 func (c *Coder) value(v reflect.Value) {
 	if c.err != nil {
 		return
 	}
 	t := v.Type()
-	if reflect.PointerTo(t).Implements(coded) {
+	if t.Kind() == reflect.Struct && c.describes(t) {
 		v.Addr().Interface().(Coded).Code(c)
 		return
 	}
 	switch t.Kind() {
+	case reflect.Float64:
+		if c.reading {
+			var f float64
+			c.Float(&f)
+			v.SetFloat(f)
+		} else {
+			c.b = binary.LittleEndian.AppendUint64(c.b, math.Float64bits(v.Float()))
+		}
 	case reflect.Bool:
 		b := v.Bool()
 		c.Bool(&b)
@@ -61,17 +82,13 @@ func (c *Coder) value(v reflect.Value) {
 			}
 			v.SetUint(u)
 		})
-	case reflect.Float64:
-		f := v.Float()
-		c.Float(&f)
-		c.set(func() { v.SetFloat(f) })
 	case reflect.String:
 		s := v.String()
 		c.Text(&s)
 		c.set(func() { v.SetString(s) })
 	case reflect.Struct:
-		for i := range t.NumField() {
-			if !t.Field(i).IsExported() {
+		for i := range v.NumField() {
+			if !v.Field(i).CanInterface() {
 				panic(fmt.Sprintf("exact: %v has the unexported field %s, and does not describe itself", t, t.Field(i).Name))
 			}
 			c.value(v.Field(i))
