@@ -33,6 +33,7 @@ type history struct {
 	last    uint64
 	dropped bool
 	damage  []journal.Damage
+	lacking []string // packs of its partition that are missing
 }
 
 func (h *history) vehicle() string { return h.open.GetHeader().GetVehicle() }
@@ -111,6 +112,11 @@ func (s *Server) openJournal() error {
 		s.cfg.Log.Error("journal is damaged", "what", d.String())
 		if h := c.of[d.Place]; h != nil {
 			h.damage = append(h.damage, d)
+		}
+		for _, h := range c.of {
+			if d.Line == 0 && h.place.Partition == d.Partition {
+				h.lacking = append(h.lacking, d.String())
+			}
 		}
 	}
 	for _, h := range c.of {
@@ -215,6 +221,9 @@ func (s *Server) revive(h *history) (o *owner, err error) {
 	o, err = s.replay(h, m, cfg, beside)
 	if err != nil {
 		return nil, err
+	}
+	if len(h.lacking) > 0 {
+		o.log.Error("drive may lack what came after this", "after_batch", o.sequence, "missing", strings.Join(h.lacking, "; "))
 	}
 	o.log.Info("drive restored", "map", m.Name, "after_batch", o.sequence, "replayed", len(h.records), "ended", o.ended)
 	return o, nil
