@@ -87,8 +87,17 @@ const maxSuiteFile = 1 << 20
 
 // openSuite reads a starter suite by its name, or a suite file.
 func openSuite(nameOrFile string) (*sensor.Suite, error) {
+	text, err := suiteText(nameOrFile)
+	if err != nil {
+		return nil, err
+	}
+	return sensor.ParseSuite(nameOrFile, text)
+}
+
+// suiteText is a suite as it is written.
+func suiteText(nameOrFile string) ([]byte, error) {
 	if text, ok := starter(nameOrFile); ok {
-		return sensor.ParseSuite(nameOrFile, text)
+		return text, nil
 	}
 	info, err := os.Stat(nameOrFile)
 	switch {
@@ -99,11 +108,7 @@ func openSuite(nameOrFile string) (*sensor.Suite, error) {
 	case !info.Mode().IsRegular() || info.Size() > maxSuiteFile:
 		return nil, fmt.Errorf("suite %s is no file of at most %d bytes: give a YAML file", nameOrFile, maxSuiteFile)
 	}
-	text, err := os.ReadFile(nameOrFile)
-	if err != nil {
-		return nil, err
-	}
-	return sensor.ParseSuite(nameOrFile, text)
+	return os.ReadFile(nameOrFile)
 }
 
 // suiteName is a suite file's name without folder and suffix.

@@ -135,7 +135,7 @@ func (b *Belief) wide(sigma float64, w *Workspace) bool {
 func (w *Workspace) outcome(mass []float64, floor float64) (n int, ok bool) {
 	most := math.Inf(-1)
 	for i, l := range w.logs {
-		if mass[i] > 0 {
+		if mass[i] >= leastMass {
 			most = math.Max(most, l)
 		}
 	}
@@ -146,7 +146,7 @@ func (w *Workspace) outcome(mass []float64, floor float64) (n int, ok bool) {
 	sum := 0.0
 	for i, l := range w.logs {
 		w.scratch[i] = 0
-		if mass[i] > 0 {
+		if mass[i] >= leastMass {
 			w.scratch[i] = float64(mass[i] * kernel.Exp(l-most))
 		}
 		sum += w.scratch[i]

@@ -108,7 +108,7 @@ func weigh(mass, logs []float64) (float64, error) {
 			panic("filter: a likelihood returned NaN or +Inf")
 		}
 		before += mass[i]
-		if mass[i] > 0 && l > most {
+		if mass[i] >= leastMass && l > most {
 			most = l
 		}
 	}
@@ -117,6 +117,10 @@ func weigh(mass, logs []float64) (float64, error) {
 	}
 	sum := 0.0
 	for i, l := range logs {
+		if mass[i] < leastMass {
+			logs[i] = 0
+			continue
+		}
 		logs[i] = float64(mass[i] * kernel.Exp(l-most))
 		sum += logs[i]
 	}
@@ -126,6 +130,12 @@ func weigh(mass, logs []float64) (float64, error) {
 	}
 	return most + kernel.Log(sum/before), nil
 }
+
+// leastMass is what counts as mass when a belief is weighed. Less is left where a
+// lattice is refined around a measurement that contradicts it by many sigmas; if
+// that were the likeliest, the others' weights would be 0, the sum no normal number,
+// and its inverse infinite.
+const leastMass = 1e-250
 
 // thin drops Gaussians below Floor and counts their mass as pruned.
 func (b *Belief) thin(t *Trace) {

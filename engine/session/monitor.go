@@ -17,7 +17,7 @@ import (
 func (s *Session) weigh(ev sensor.Event, l any) {
 	st := &s.state
 	key := monitorKey(ev)
-	withheld := st.monitor.Isolated(key)
+	withheld := !s.unguarded && st.monitor.Isolated(key)
 	var fell filter.Predictive
 	if s.watchable(ev, key) {
 		s.work.Foretell(&fell)

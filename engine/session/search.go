@@ -113,7 +113,7 @@ func (s *Session) anywhere(events []sensor.Event) *Session {
 	never := new(float64)
 	suite := *s.suite
 	suite.Vehicle.LostPerS, suite.Vehicle.MovedPerS = never, never
-	f, err := New(Config{Vehicle: s.vehicle, Space: s.space, Names: s.names, Suite: &suite, MaxCells: s.maxCells})
+	f, err := New(Config{Vehicle: s.vehicle, Space: s.space, Names: s.names, Suite: &suite, MaxCells: s.maxCells, Unguarded: s.unguarded})
 	if err != nil {
 		panic("session: " + err.Error()) // it has been made before
 	}

@@ -31,6 +31,10 @@ type Config struct {
 	// anybody else has, and returns what waits for its end; nil has it done when
 	// its end is waited for. See search.go.
 	Begin func(work func()) (wait func())
+	// Unguarded has the measurements of isolated sensors used, too: for studies
+	// that compare the evidence of suites of which some are wrong. What is isolated
+	// would be left out of the sum, and the worst suite have the least to answer for.
+	Unguarded bool
 }
 
 // Names is what a road map knows about its directed edges.
@@ -145,6 +149,7 @@ type Session struct {
 	past      []sensor.Event
 	beginWork func(func()) func()
 	unheard   bool
+	unguarded bool
 	until     sensor.Time
 
 	state  state
@@ -211,7 +216,7 @@ func prepare(c Config) (*Session, error) {
 	}
 	s := &Session{
 		vehicle: c.Vehicle, space: c.Space, names: c.Names, dim: 2, maxCells: c.MaxCells, hasher: summary.NewHasher(),
-		beginWork: c.Begin, wideSize: wideSize, hugeSize: hugeSize, maxWaiting: maxWaiting,
+		beginWork: c.Begin, unguarded: c.Unguarded, wideSize: wideSize, hugeSize: hugeSize, maxWaiting: maxWaiting,
 	}
 	if s.maxCells == 0 {
 		s.maxCells = defaultMaxCells

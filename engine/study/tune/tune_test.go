@@ -1,0 +1,202 @@
+package tune
+
+import (
+	"math"
+	"reflect"
+	"runtime"
+	"strings"
+	"testing"
+
+	"leadline/engine/geo"
+	"leadline/engine/plane"
+	"leadline/engine/sensor"
+	"leadline/fixtures/accept"
+	"leadline/fixtures/drives"
+	"leadline/fixtures/sim"
+)
+
+// hills is a field of smooth hills 40 m high and some 600 m wide.
+type hills struct{ frame geo.Frame }
+
+func (g hills) Frame() geo.Frame { return g.frame }
+func (g hills) Bounds() geo.Box {
+	return geo.Box{Min: geo.Point{E: -2e4, N: -2e4}, Max: geo.Point{E: 2e4, N: 2e4}}
+}
+
+func (g hills) Sample(dst geo.Heights, e, n []float64) {
+	const k = 2 * math.Pi / 600
+	for i := range e {
+		se, ce := math.Sincos(k * e[i])
+		sn, cn := math.Sincos(k * (n[i] + 0.3*e[i]))
+		dst.HeightM[i] = 20*se + 20*sn
+		if dst.SlopeE != nil {
+			dst.SlopeE[i], dst.SlopeN[i] = 20*k*ce+20*k*0.3*cn, 20*k*cn
+		}
+		if dst.VarianceM2 != nil {
+			dst.VarianceM2[i] = 0
+		}
+	}
+}
+
+// The world's figures: an altimeter of 3 m, and odometry that walks 30 m an axis in
+// a minute: at 60 m/s 0.5 m after a metre.
+const (
+	trueAltimeterM = 3.0
+	trueWalk       = 0.5
+)
+
+// wrong is a suite whose figures are off.
+const wrong = `
+sensors:
+  - name: odometry
+    kind: displacement
+    noise: {sigma_m_per_sqrt_m: 1.2} # a guess
+  - name: altimeter
+    kind: clearance
+    noise: {sigma_m: 1.5}
+    outlier_probability: 0
+`
+
+const (
+	altimeterKey = "sensors.altimeter.noise.sigma_m"
+	odometryKey  = "sensors.odometry.noise.sigma_m_per_sqrt_m"
+)
+
+func parsed(t testing.TB, text string) *sensor.Suite {
+	t.Helper()
+	s, err := sensor.ParseSuite("the test's", []byte(text))
+	if err != nil {
+		t.Fatal(err)
+	}
+	return s
+}
+
+// flights are simulated: their world shares nothing with the filter.
+func flights(t testing.TB, seed uint64, n int, durationS float64) (out []Drive) {
+	t.Helper()
+	field := hills{geo.NewFrame(geo.FromDegrees(-30, 45))}
+	space := plane.Over(field, "hills", 50)
+	for i := range n {
+		o := sim.FlightOptions{Vehicle: "aircraft", DurationS: durationS, StartSigmaM: 20, OdometryMRootMin: 30, AltimeterM: trueAltimeterM}
+		d, err := sim.Flight(seed*1000+uint64(i), field, o)
+		if err != nil {
+			t.Fatal(err)
+		}
+		out = append(out, Drive{Name: "flight", Drive: drives.Convert(d, "", ""), Space: space})
+	}
+	return out
+}
+
+// TestRecovers: the figures of the world come back. The quick form tunes both once
+// and asks for 3 standard errors; the long one 50 times, seeds 1 to 50, and asks
+// that 90 % of the estimates be within 2.
+func TestRecovers(t *testing.T) {
+	if testing.Short() {
+		t.Skip("filters for long")
+	}
+	trials, n, durationS, cells := 1, 1, 50.0, 200
+	figures := []Figure{{Key: altimeterKey, Low: 0.5, High: 15}, {Key: odometryKey, Low: 0.1, High: 3}}
+	if accept.Long() {
+		trials, n, durationS, cells = 50, 2, 240, 2000
+	}
+	within := [2]int{}
+	var z [2][]float64
+	for seed := 1; seed <= trials; seed++ {
+		r, err := Run(parsed(t, wrong), flights(t, uint64(seed), n, durationS), nil, Options{
+			Figures: figures, MaxCells: cells, NoProfile: true,
+		})
+		if err != nil {
+			t.Fatal(err)
+		}
+		for i, want := range []float64{trueAltimeterM, trueWalk} {
+			f := r.Figures[i]
+			if f.Known != Estimated || f.LogSigma == nil {
+				t.Errorf("seed %d: %s: %s", seed, f.Key, f.Known)
+				continue
+			}
+			off := math.Log(*f.Value/want) / *f.LogSigma
+			t.Logf("seed %d: %s %.4g (%.4g to %.4g), true %g: %+.2f standard errors; %d evaluations", seed, f.Key, *f.Value, *f.From, *f.To, want, off, r.Evaluations)
+			z[i] = append(z[i], off)
+			if math.Abs(off) <= 2 {
+				within[i]++
+			}
+			if trials == 1 && math.Abs(off) > 3 {
+				t.Errorf("seed %d: %s is %v, %v standard errors from %v", seed, f.Key, *f.Value, off, want)
+			}
+		}
+		if !(r.After > r.Before) || !r.Converged {
+			t.Errorf("seed %d: log evidence from %v to %v, converged %v", seed, r.Before, r.After, r.Converged)
+		}
+	}
+	for i := range within {
+		t.Logf("%s: %d of %d within 2 standard errors", []string{altimeterKey, odometryKey}[i], within[i], trials)
+		if trials > 1 && within[i] < trials*9/10 {
+			t.Errorf("only %d of %d", within[i], trials)
+		}
+	}
+}
+
+// TestSaysWhatIsNotKnown: of a figure that no drive depends on nothing is said; of
+// one that shows only where it is large, a limit; and processors do not matter.
+func TestSaysWhatIsNotKnown(t *testing.T) {
+	if testing.Short() {
+		t.Skip("filters for long")
+	}
+	all := flights(t, 77, 2, 20)
+	o := Options{
+		Figures:  []Figure{{Key: "vehicle.max_accel_mps2"}, {Key: "sensors.altimeter.attitude_sigma_deg", Low: 0.01, High: 20}},
+		MaxCells: 200,
+	}
+	suite := parsed(t, strings.Replace(wrong, "sigma_m: 1.5", "sigma_m: 3", 1))
+	of := func(processors int) *Result {
+		defer runtime.GOMAXPROCS(runtime.GOMAXPROCS(processors))
+		r, err := Run(suite, all[:1], all[1:], o)
+		if err != nil {
+			t.Fatal(err)
+		}
+		return r
+	}
+	one := of(1)
+	if f := one.Figures[0]; f.Known != Silent || f.Value != nil || f.LogSigma != nil {
+		t.Errorf("the greatest acceleration, where nothing is a gap: %+v", f)
+	}
+	if f := one.Figures[1]; f.Known != AtMost || f.Value == nil || *f.Value > 15 {
+		t.Errorf("the attitude: %+v", f)
+	}
+	if !reflect.DeepEqual(one.Suite, suite) {
+		t.Error("figures that are not known were written into the suite")
+	}
+	if one.HeldBefore == nil || *one.HeldBefore != *one.HeldAfter || one.Held != 1 || one.Drives != 1 {
+		t.Errorf("held out: %+v", one)
+	}
+	if len(one.Figures[1].Profile) != profilePoints {
+		t.Errorf("profile: %v", one.Figures[1].Profile)
+	}
+	if two := of(2); !reflect.DeepEqual(one, two) {
+		t.Error("one and two processors give different results")
+	}
+}
+
+func TestTuneWrong(t *testing.T) {
+	all := flights(t, 1, 1, 5)
+	for _, c := range []struct {
+		figures []Figure
+		want    string
+	}{
+		{nil, "0 figures are to be tuned"},
+		{[]Figure{{Key: altimeterKey}, {Key: altimeterKey}}, "is to be tuned twice"},
+		{[]Figure{{Key: "sensors.gyro.sign"}}, `there is no "gyro" in sensors`},
+		{[]Figure{{Key: "sensors.odometry.kind"}}, "is no figure"},
+		{[]Figure{{Key: "sensors.altimeter.beam_width_deg"}}, "the suite does not say what sensors.altimeter.beam_width_deg is: give bounds"},
+		{[]Figure{{Key: altimeterKey, Low: 2, High: 1}}, "the lower first"},
+		{[]Figure{{Key: "vehicle.integrity_risk", Low: 1e-3, High: 1}}, "a bound of vehicle.integrity_risk = 1"},
+	} {
+		_, err := Run(parsed(t, wrong), all, nil, Options{Figures: c.figures})
+		if err == nil || !strings.Contains(err.Error(), c.want) || strings.Contains(err.Error(), "\n") {
+			t.Errorf("%v: got %v, want %q", c.figures, err, c.want)
+		}
+	}
+	if _, err := Run(nil, nil, all, Options{}); err == nil || !strings.Contains(err.Error(), "no drive to tune on") {
+		t.Errorf("nothing to tune on: %v", err)
+	}
+}
