@@ -14,7 +14,7 @@ FUZZ_TIME ?= 60s
 # the code. A tree may be named before it exists.
 RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/livelog/... ./engine/study/sweep ./engine/study/forecast ./engine/study/tune ./engine/journal/... ./cmd/...
 
-.PHONY: build test race fuzz credibility bench fetch fetch-arrow fetch-clients generate generate-check \
+.PHONY: build test race fuzz credibility bench fetch fetch-arrow fetch-clients fetch-page page page-check generate generate-check \
 	generate-clients generate-clients-check format format-check vet lint lint-only vuln licences licences-check clean
 
 # build makes one static binary.
@@ -47,8 +47,9 @@ bench:
 	$(GO) test -run '^$$' -bench . -benchmem ./...
 
 # fetch brings outside data for the tests, see DATA.md, the library that reads a
-# compiled road map a second time, and the packages of the JavaScript client.
-fetch: fetch-arrow fetch-clients
+# compiled road map a second time, and the packages of the JavaScript client and
+# of the page.
+fetch: fetch-arrow fetch-clients fetch-page
 	$(GO) run ./fixtures/outside/fetch
 
 ARROW_JS = apache-arrow@21.2.0
@@ -73,6 +74,29 @@ generate-clients: fetch-clients
 generate-clients-check: generate-clients
 	@changed="$$(git status --porcelain engine/client)"; \
 	if [ -n "$$changed" ]; then echo "not what is committed:"; echo "$$changed"; git diff engine/client; exit 1; fi
+
+# page makes the bundle of the page, which is committed, out of engine/page/src;
+# page-check compares them, and has the types checked.
+PAGE = engine/page
+PAGE_OUT ?= $(PAGE)/dist
+PAGE_PACKAGES = $(PAGE)/node_modules/preact $(PAGE)/node_modules/@preact/signals $(PAGE)/node_modules/@preact/signals-core \
+	$(PAGE)/node_modules/uplot $(WEB)/node_modules/@bufbuild/protobuf $(WEB)/node_modules/@connectrpc/connect $(WEB)/node_modules/@connectrpc/connect-web
+page: fetch-page fetch-clients
+	rm -rf $(PAGE_OUT)
+	NODE_PATH=$(CURDIR)/$(WEB)/node_modules $(GO) tool -modfile=tools/esbuild.mod esbuild $(PAGE)/src/main.tsx $(PAGE)/src/style.css \
+		--bundle --minify --format=esm --target=es2022 --charset=utf8 --jsx=automatic --jsx-import-source=preact --tsconfig-raw='{}' \
+		--legal-comments=none --log-level=warning '--entry-names=[name]-[hash]' --outdir=$(PAGE_OUT)
+	for p in $(PAGE_PACKAGES); do \
+		grep -h -m1 '"name"' $$p/package.json | tr -d ' ",' ; grep -h -m1 '"version"' $$p/package.json | tr -d ' ",'; grep -h -m1 '"license"' $$p/package.json | tr -d ' ",'; \
+		cat $$p/LICENSE* 2>/dev/null; echo; done >$(PAGE_OUT)/licences.txt
+
+page-check:
+	$(MAKE) page PAGE_OUT=build/_page
+	npm run --silent --prefix $(PAGE) types
+	diff -r build/_page $(PAGE)/dist
+
+fetch-page:
+	npm ci --include=dev --silent --no-audit --no-fund --prefix $(PAGE)
 
 # generate-check generates into build/, in a folder that ./... passes over, and
 # compares with what is committed.

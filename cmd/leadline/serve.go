@@ -9,6 +9,7 @@ import (
 
 	"github.com/spf13/cobra"
 
+	"leadline/engine/page"
 	"leadline/engine/sensor"
 	"leadline/engine/server"
 )
@@ -105,7 +106,11 @@ func serve(c *cobra.Command, o *serveOptions) error {
 		return err
 	}
 	return s.untilSignalled(log, o.drainTimeout, func() {
-		fmt.Fprintf(c.OutOrStdout(), "listening on %s, maps: %s\n", s.address, strings.Join(s.maps, ", "))
+		scheme := "http"
+		if o.encryption.Certificate != "" {
+			scheme = "https"
+		}
+		fmt.Fprintf(c.OutOrStdout(), "listening on %s, maps: %s\npage for people at %s://%s/\n", s.address, strings.Join(s.maps, ", "), scheme, s.address)
 		b := thisBuild()
 		log.Info("serving", "address", s.address, "maps", s.maps, "version", b.Version, "commit", b.Commit, "go", b.Go, "platform", b.Platform)
 	})
@@ -119,7 +124,7 @@ func (o *serveOptions) config() (cfg *server.Config, closeMaps func(), err error
 			m.Close()
 		}
 	}
-	cfg = &server.Config{Origins: o.origins, MaxCells: o.maxCells, Suites: map[string]*sensor.Suite{}, Limits: server.Limits{Vehicles: o.vehicles}}
+	cfg = &server.Config{Origins: o.origins, Page: page.Handler(), MaxCells: o.maxCells, Suites: map[string]*sensor.Suite{}, Limits: server.Limits{Vehicles: o.vehicles}}
 	for _, arg := range o.maps {
 		name, path := named(arg, mapName)
 		m, err := openMap(path)

@@ -1,0 +1,53 @@
+// Who uses the page: the one place where a bearer token is kept and attached.
+import { Code, ConnectError, type Interceptor } from "@connectrpc/connect";
+import { signal } from "@preact/signals";
+
+const key = "leadline-token";
+
+function stored(): string {
+  try {
+    return sessionStorage.getItem(key) ?? "";
+  } catch {
+    return "";
+  }
+}
+
+/** The bearer token; empty where the server asks for none. */
+export const token = signal(stored());
+
+/** Why the server does not take who asks, in words; empty if it does. */
+export const identityTrouble = signal("");
+
+/** Takes another token, for as long as the tab is open. */
+export function useToken(text: string) {
+  token.value = text.trim();
+  identityTrouble.value = "";
+  try {
+    sessionStorage.setItem(key, token.value);
+  } catch {
+    // It is then gone with the page.
+  }
+}
+
+/** Attaches the token to every call, and notes when it is not taken. */
+export const identify: Interceptor = (next) => async (request) => {
+  if (token.value) request.header.set("Authorization", `Bearer ${token.value}`);
+  try {
+    const answer = await next(request);
+    if (!answer.stream) identityTrouble.value = "";
+    return answer;
+  } catch (e) {
+    noteIdentity(e);
+    throw e;
+  }
+};
+
+/** Notes an error that is about who asks, and reports whether it was one. */
+export function noteIdentity(e: unknown): boolean {
+  const error = ConnectError.from(e);
+  if (error.code !== Code.Unauthenticated) return false;
+  identityTrouble.value = token.value
+    ? `Your identity has expired or is not known here: enter a new token. The server says: ${error.rawMessage}`
+    : `This server wants to know who you are: enter your token. The server says: ${error.rawMessage}`;
+  return true;
+}

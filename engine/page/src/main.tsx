@@ -1,0 +1,118 @@
+// The page: where every vehicle may be, and how sure that is.
+import { effect } from "@preact/signals";
+import { render } from "preact";
+import { Alarms, AlarmSound } from "./alarms";
+import { Chances } from "./chances";
+import { duration } from "./format";
+import { identityTrouble, token, useToken } from "./identity";
+import { Figures } from "./figures";
+import { List } from "./list";
+import { chosen, choose, heardAt, link, openAlarms, order, start } from "./live";
+import { MapView } from "./mapview";
+import { Maps } from "./maps";
+import { address, route, shown, views } from "./route";
+import { clock, lightness, units } from "./settings";
+
+// Whoever opens the page is shown the worst one.
+const stop = effect(() => {
+  if (chosen.value) queueMicrotask(() => stop());
+  else if (order.value.length) choose(order.value[0]);
+});
+
+function Connection() {
+  const l = link.value;
+  const age = heardAt.value ? (clock.value - heardAt.value) / 1000 : 0;
+  const old = heardAt.value ? ` What is shown is ${duration(age)} old.` : "";
+  if (l.state === "away") return <p class="connection bad" role="status">{l.why} Trying again.{old}</p>;
+  if (l.state === "connecting") return <p class="connection" role="status">Connecting.</p>;
+  return <p class={`connection ${age > 5 ? "" : "good"}`} role="status">{age > 5 ? `Connected; no news for ${duration(age - (age % 5))}.` : "Live."}</p>;
+}
+
+function Identity() {
+  if (!identityTrouble.value) return null;
+  return (
+    <form
+      class="identity"
+      onSubmit={(e) => {
+        e.preventDefault();
+        useToken(new FormData(e.currentTarget).get("token") as string);
+      }}
+    >
+      <p role="alert">{identityTrouble.value}</p>
+      <label>
+        Token <input name="token" type="password" autocomplete="off" defaultValue={token.value} required />
+      </label>
+      <button>Use it</button>
+    </form>
+  );
+}
+
+function Page() {
+  const v = shown.value;
+  const open = openAlarms.value.length;
+  return (
+    <>
+      <a class="skip" href="#list" onClick={(e) => (e.preventDefault(), document.querySelector<HTMLElement>("main")?.focus())}>
+        To the content
+      </a>
+      <header>
+        <h1>Leadline</h1>
+        <nav aria-label="Views">
+          {views.map(([name, words]) => (
+            <a key={name} href={address(name)} aria-current={v === name ? "page" : undefined}>
+              {words}
+              {name === "alarms" && open > 0 && <span class="count" aria-label={`${open} open`}>{open}</span>}
+            </a>
+          ))}
+        </nav>
+        <Connection />
+        <div class="choices">
+          <label>
+            Units{" "}
+            <select value={units.value} onChange={(e) => (units.value = e.currentTarget.value as "metric")}>
+              <option value="metric">metric</option>
+              <option value="nautical">nautical</option>
+            </select>
+          </label>
+          <label>
+            Light{" "}
+            <select value={lightness.value} onChange={(e) => (lightness.value = e.currentTarget.value as "system")}>
+              <option value="system">as the system</option>
+              <option value="light">light</option>
+              <option value="dark">dark</option>
+            </select>
+          </label>
+        </div>
+      </header>
+      <p class="caution">
+        <strong>An aid, not certified.</strong> A position may be wrong although it is called located. Defer to charts, controllers, local rules and licensed navigators.
+      </p>
+      <Identity />
+      <AlarmSound />
+      <main tabIndex={-1} class={v}>
+        {(v === "now" || v === "chances") && (
+          <>
+            <List />
+            <MapView />
+            <section class="side" aria-label={v === "now" ? `Figures of ${chosen.value || "no vehicle"}` : `Chances of ${chosen.value || "no vehicle"}`}>
+              <h2>
+                {chosen.value || "No vehicle"} <small>{v === "now" ? "how sure, and why" : "chances"}</small>
+              </h2>
+              {v === "now" ? <Figures /> : <Chances />}
+            </section>
+          </>
+        )}
+        {v === "alarms" && <Alarms />}
+        {v === "maps" && <Maps />}
+      </main>
+    </>
+  );
+}
+
+route();
+start();
+render(<Page />, document.body);
+
+export { drawBelief, placeBelief } from "./paint";
+export { took } from "./mapview";
+export { Frame, utm } from "./project";

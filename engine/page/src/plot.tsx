@@ -1,0 +1,69 @@
+// A figure over time.
+import { useEffect, useRef } from "preact/hooks";
+import uPlot from "uplot";
+import { figure } from "./format";
+import { dark } from "./settings";
+
+export type Line = { label: string; values: (number | null)[]; dash?: number[]; colour: "first" | "second" | "quiet" };
+type Props = { title: string; unit: string; times: number[]; lines: Line[]; band?: boolean; log?: boolean; says: string };
+
+const colours = () =>
+  dark.value
+    ? { first: "#8fb4ff", second: "#ffb454", quiet: "#8b98a5", text: "#c3ccd4", grid: "#2b333a", band: "rgba(143,180,255,.18)" }
+    : { first: "#2456c9", second: "#a34a00", quiet: "#5d6670", text: "#33373b", grid: "#e0ddd5", band: "rgba(36,86,201,.14)" };
+
+/** Lines over time; with a band between the second and the third. */
+export function Plot(props: Props) {
+  const box = useRef<HTMLDivElement>(null);
+  const plot = useRef<uPlot | undefined>(undefined);
+  const shape = JSON.stringify([dark.value, props.unit, props.band, props.log, props.lines.map((l) => l.label)]);
+  useEffect(() => {
+    const c = colours();
+    const axis = { stroke: c.text, grid: { stroke: c.grid, width: 1 }, ticks: { stroke: c.grid, width: 1 }, font: "11px system-ui, sans-serif" };
+    plot.current = new uPlot(
+      {
+        width: box.current!.clientWidth || 300,
+        height: 120,
+        legend: { show: false },
+        cursor: { y: false, drag: { x: false, y: false }, points: { size: 5 } },
+        tzDate: (s) => uPlot.tzDate(new Date(s * 1000), "UTC"),
+        scales: { x: { time: true }, y: props.log ? { distr: 3 } : { range: (_, a, b) => spread(a, b) } },
+        axes: [
+          { ...axis, space: 70, size: 26, gap: 3, values: (_, ts) => ts.map((t) => new Date(t * 1000).toISOString().slice(11, 19)) },
+          { ...axis, size: 50, gap: 3, space: 24, values: (_, vs) => vs.map((v) => (v === null ? "" : figure(v))) },
+        ],
+        series: [{}, ...props.lines.map((l) => ({ label: l.label, stroke: c[l.colour], width: l.colour === "quiet" ? 1 : 1.8, dash: l.dash, points: { show: false } }))],
+        bands: props.band ? [{ series: [3, 2], fill: c.band }] : [],
+      },
+      [props.times, ...props.lines.map((l) => l.values)],
+      box.current!,
+    );
+    const sized = new ResizeObserver(() => {
+      const width = box.current?.clientWidth ?? 0;
+      if (width > 0 && width !== plot.current?.width) plot.current?.setSize({ width, height: 120 });
+    });
+    sized.observe(box.current!);
+    return () => {
+      sized.disconnect();
+      plot.current?.destroy();
+    };
+  }, [shape]);
+  useEffect(() => {
+    plot.current?.setData([props.times, ...props.lines.map((l) => l.values)]);
+  }, [props.times, shape]);
+  return (
+    <figure class="plot">
+      <figcaption>
+        {props.title} <small>{props.unit}</small>
+      </figcaption>
+      <div ref={box} role="img" aria-label={`${props.title}, ${props.unit}, over UTC: ${props.says}`} />
+    </figure>
+  );
+}
+
+/** A range with room; never empty. */
+function spread(a: number | null, b: number | null): [number, number] {
+  const [low, high] = [a ?? 0, b ?? 1];
+  const room = Math.max((high - low) * 0.08, Math.abs(high) * 1e-6, 1e-12);
+  return [low - room, high + room];
+}

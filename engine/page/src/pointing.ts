@@ -1,0 +1,31 @@
+// What the person points at on the map: a place with a radius, or an area.
+import { signal } from "@preact/signals";
+import type { LonLat } from "./project";
+
+export const tool = signal<"none" | "place" | "area">("none");
+export const spot = signal<LonLat | undefined>(undefined);
+export const spotRadiusM = signal(25);
+export const corners = signal<LonLat[]>([]);
+export const closed = signal(false);
+
+/** Points at a place with the tool in hand. */
+export function point(p: LonLat) {
+  if (tool.value === "place") {
+    forgetArea();
+    spot.value = p;
+  } else if (tool.value === "area") {
+    if (closed.value) forgetArea();
+    spot.value = undefined;
+    if (corners.value.length < 200) corners.value = [...corners.value, p];
+  }
+}
+
+export function forgetArea() {
+  corners.value = [];
+  closed.value = false;
+}
+
+/** Ends the outline of an area, if it is one. */
+export function close() {
+  if (tool.value === "area" && corners.value.length >= 3) closed.value = true;
+}

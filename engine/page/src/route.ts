@@ -1,0 +1,36 @@
+// The view and the vehicle, as the page's address has them.
+import { signal } from "@preact/signals";
+import { choose, chosen } from "./live";
+import { tool } from "./pointing";
+
+export const views = [
+  ["now", "Now"],
+  ["chances", "Chances"],
+  ["alarms", "Alarms"],
+  ["maps", "Maps and suites"],
+] as const;
+export type ViewName = (typeof views)[number][0];
+
+export const shown = signal<ViewName>("now");
+
+function read() {
+  const [name, vehicle] = location.hash.slice(1).split("/");
+  shown.value = views.find(([v]) => v === name)?.[0] ?? "now";
+  if (vehicle) {
+    try {
+      choose(decodeURIComponent(vehicle));
+    } catch {
+      // No vehicle is called that.
+    }
+  }
+  if (shown.value !== "chances") tool.value = "none";
+}
+
+/** The address of a view of a vehicle, the chosen one if none is named. */
+export const address = (v: ViewName, vehicle = chosen.value) => `#${v}${vehicle ? "/" + encodeURIComponent(vehicle) : ""}`;
+
+/** Goes by the address from now on. */
+export function route() {
+  read();
+  addEventListener("hashchange", read);
+}
