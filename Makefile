@@ -61,8 +61,9 @@ fetch-clients:
 	npm ci --include=dev --silent --no-audit --no-fund --prefix $(WEB)
 
 # generate writes the Go code of the API beside its .proto files, and the
-# messages and types of the clients in other languages.
-generate: generate-clients
+# messages and types of the clients in other languages, and the page, which holds
+# them.
+generate: generate-clients page
 	$(BUF) lint proto
 	$(BUF) generate proto --template proto/buf.gen.yaml
 
