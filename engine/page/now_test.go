@@ -5,7 +5,8 @@ import (
 	"time"
 )
 
-// TestPictures takes a picture of each view.
+// TestNow proves that the page shows every vehicle, follows the one that is
+// chosen, complains of nothing and asks nobody but its server.
 func TestNow(t *testing.T) {
 	b := startBrowser(t)
 	r := serve(t, "127.0.0.1:0")
