@@ -70,6 +70,9 @@ func startWithin(o *Options) (*broker, error) {
 		ServerName: "leadline", DontListen: true, NoSigs: true,
 		JetStream: true, StoreDir: o.Dir, SyncAlways: true, DisableJetStreamBanner: true,
 		MaxPayload: maxMessage + 4096,
+		// What the journal may take is checked against the disk as it fills; the
+		// broker would want all of it free at the start.
+		JetStreamMaxStore: 2 * o.MaxBytes,
 	})
 	if err != nil {
 		return nil, fmt.Errorf("journal: %s: %w", o.Dir, err)

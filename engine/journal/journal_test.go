@@ -2,6 +2,7 @@ package journal
 
 import (
 	"bytes"
+	"errors"
 	"fmt"
 	"slices"
 	"strings"
@@ -33,7 +34,7 @@ func TestReopen(t *testing.T) {
 	if err := j.Close(); err != nil {
 		t.Fatal(err)
 	}
-	if _, err := put(lines[0], 1, nil); err != ErrClosed {
+	if _, err := put(lines[0], 1, nil); !errors.Is(err, ErrClosed) {
 		t.Errorf("a closed journal says %v", err)
 	}
 	j, k = openAt(t, o)

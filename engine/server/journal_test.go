@@ -36,7 +36,7 @@ func crowded(t *testing.T) *journal.Options {
 	if err := unix.Statfs(dir, &s); err != nil {
 		t.Fatal(err)
 	}
-	return &journal.Options{Dir: dir, FreeBytes: 2 * int64(s.Bavail) * int64(s.Bsize)}
+	return &journal.Options{Dir: dir, FreeBytes: 2 * int64(s.Bavail) * s.Bsize}
 }
 
 // brokerDir has this test's program be a broker, and nothing else: in a process
@@ -123,7 +123,9 @@ func (l *life) start() {
 // nothing more is written.
 func (l *life) stop(ctx context.Context) {
 	_ = l.s.Shutdown(ctx)
-	<-l.done
+	if err := <-l.done; err != nil {
+		l.t.Error(err)
+	}
 }
 
 // TestRestart proves that a drive goes on over restarts of the server, stopped in

@@ -190,13 +190,13 @@ func TestWrongCheckpoints(t *testing.T) {
 // return an error or a session, and never panic.
 func FuzzRestore(f *testing.F) {
 	town := crossing()
-	c := Config{Vehicle: "v", Space: town, Names: town, Start: pointStart(town, geo.Point{E: 10, N: 30}, 30), MaxCells: 2000}
+	c := Config{Vehicle: "v", Space: town, Names: town, Start: pointStart(town, geo.Point{E: 10, N: 30}, 2), MaxCells: 2000}
 	s := open(f, c)
-	for i, ev := range roadEvents(1)[:120] {
+	for i, ev := range inOrder(roadEvents(1))[:40] {
 		if _, err := s.Add(ev); err != nil {
 			f.Fatal(err)
 		}
-		if i%40 == 0 {
+		if i%13 == 0 {
 			b := s.Checkpoint()
 			f.Add(b[12 : len(b)-4])
 		}

@@ -11,15 +11,6 @@ import (
 	"golang.org/x/sys/unix"
 )
 
-// freeBytes is what an ordinary user may still write where a folder is.
-func freeBytes(dir string) (int64, error) {
-	var s unix.Statfs_t
-	if err := unix.Statfs(dir, &s); err != nil {
-		return 0, err
-	}
-	return int64(s.Bavail) * int64(s.Bsize), nil
-}
-
 // lockDir takes a folder for this process, until the file is closed or the
 // process ends.
 func lockDir(dir string) (*os.File, error) {
