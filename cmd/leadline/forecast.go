@@ -17,10 +17,10 @@ import (
 )
 
 type forecastOptions struct {
-	mapPath, suite, geojson, picture string
-	rates                            []string
-	speed, startSigma                float64
-	asJSON                           bool
+	mapPath, suite, geojson, picture, whole string
+	rates                                   []string
+	speed, startSigma                       float64
+	asJSON                                  bool
 	forecast.Options
 }
 
@@ -29,7 +29,7 @@ func forecastCommand() *cobra.Command {
 	c := &cobra.Command{
 		Use:   "forecast ROUTE... --map MAP --suite SUITE",
 		Short: "Say beforehand how good positions will be along planned routes",
-		Args:  cobra.MinimumNArgs(1),
+		Args:  cobra.ArbitraryArgs,
 		RunE:  func(c *cobra.Command, args []string) error { return forecastRoutes(c, o, args) },
 	}
 	f := c.Flags()
@@ -48,6 +48,7 @@ func forecastCommand() *cobra.Command {
 	f.IntVar(&o.MaxCells, "max-cells", defaultCells, "greatest number of cells of a belief; decides how finely a wide start is searched")
 	f.StringVar(&o.geojson, "geojson", "", "write the routes with what is predicted, ambiguity and what would help to this file")
 	f.StringVar(&o.picture, "png", "", "write a picture to this file; of several routes, to one each: NAME-ROUTE.png")
+	f.StringVar(&o.whole, "whole", "", "in place of routes: what a stretch anywhere on the map tells, and how alike others are, to this file: GeoJSON of a road map's edges, NAME-rms.tif and NAME-ambiguity.tif of a height map for NAME.tif")
 	f.BoolVar(&o.asJSON, "json", false, "print the forecasts as JSON, one object a line")
 	settable(c, "max-cells")
 	return c
@@ -57,7 +58,10 @@ func forecastRoutes(c *cobra.Command, o forecastOptions, paths []string) error {
 	if o.mapPath == "" || o.suite == "" {
 		return errors.New("forecast needs --map and --suite: a compiled map, and the sensors with their noise (`leadline suite` lists starters)")
 	}
-	if o.maxCellsWrong() {
+	if (o.whole == "") == (len(paths) == 0) {
+		return errors.New("forecast needs routes, or --whole for the whole map: give one of the two")
+	}
+	if o.MaxCells < 1 {
 		return fmt.Errorf("--max-cells is %d: give a whole number, 1 or more", o.MaxCells)
 	}
 	if o.speed < 0 {
@@ -75,6 +79,9 @@ func forecastRoutes(c *cobra.Command, o forecastOptions, paths []string) error {
 	suite, err := openSuite(o.suite)
 	if err != nil {
 		return err
+	}
+	if o.whole != "" {
+		return o.wholeMap(c.OutOrStdout(), m, suite, rates)
 	}
 	var all []*forecast.Forecast
 	for _, path := range paths {
@@ -125,8 +132,6 @@ func forecastRoutes(c *cobra.Command, o forecastOptions, paths []string) error {
 	}
 	return nil
 }
-
-func (o *forecastOptions) maxCellsWrong() bool { return o.MaxCells < 1 }
 
 // pictureName tells the pictures of several routes apart.
 func pictureName(name, route string, n int) string {

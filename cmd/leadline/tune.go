@@ -195,14 +195,18 @@ func printTuned(w io.Writer, r *tune.Result) error {
 		default:
 			fmt.Fprintf(&b, "%s, 95 %% from %s to %s", tune.Text(*t.Value), tune.Text(*t.From), tune.Text(*t.To))
 		}
-		fmt.Fprintf(&b, "; the suite had %s\n", tune.Text(t.Before))
+		if t.Given {
+			fmt.Fprintf(&b, "; the suite had %s\n", tune.Text(t.Before))
+		} else {
+			fmt.Fprintf(&b, "; the suite did not say, and the search began at %s\n", tune.Text(t.Before))
+		}
 		if t.Bared > 0 {
 			fmt.Fprintf(&b, "  the sigmas that %d of its measurements carry were left aside\n", t.Bared)
 		}
 	}
-	fmt.Fprintf(&b, "log evidence of the %d drives tuned on: %.1f before, %.1f after, %+.1f nats\n", r.Drives, r.Before, r.After, r.After-r.Before)
+	fmt.Fprintf(&b, "log evidence of what was tuned on (drives: %d): %.1f before, %.1f after, %+.1f nats\n", r.Drives, r.Before, r.After, r.After-r.Before)
 	if r.HeldBefore != nil {
-		fmt.Fprintf(&b, "of the %d held out: %.1f before, %.1f after, %+.1f nats", r.Held, *r.HeldBefore, *r.HeldAfter, *r.HeldAfter-*r.HeldBefore)
+		fmt.Fprintf(&b, "of what was held out (drives: %d): %.1f before, %.1f after, %+.1f nats", r.Held, *r.HeldBefore, *r.HeldAfter, *r.HeldAfter-*r.HeldBefore)
 		if *r.HeldAfter < *r.HeldBefore {
 			b.WriteString(": what was found does not hold there")
 		}

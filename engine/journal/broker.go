@@ -159,8 +159,11 @@ func partitions(info *jetstream.StreamInfo) (int, error) {
 type brokerLog struct{ *slog.Logger }
 
 func (l brokerLog) Noticef(format string, v ...any) { l.Debug("broker: " + fmt.Sprintf(format, v...)) }
-func (l brokerLog) Warnf(format string, v ...any)   { l.Warn("broker: " + fmt.Sprintf(format, v...)) }
-func (l brokerLog) Errorf(format string, v ...any)  { l.Error("broker: " + fmt.Sprintf(format, v...)) }
-func (l brokerLog) Fatalf(format string, v ...any)  { l.Error("broker: " + fmt.Sprintf(format, v...)) }
-func (l brokerLog) Debugf(string, ...any)           {}
-func (l brokerLog) Tracef(string, ...any)           {}
+
+func (l brokerLog) Warnf(format string, v ...any) { l.Warn("broker: " + fmt.Sprintf(format, v...)) }
+
+func (l brokerLog) Errorf(format string, v ...any) { l.Error("broker: " + fmt.Sprintf(format, v...)) }
+
+func (l brokerLog) Fatalf(format string, v ...any) { l.Error("broker: " + fmt.Sprintf(format, v...)) }
+func (l brokerLog) Debugf(string, ...any)          {}
+func (l brokerLog) Tracef(string, ...any)          {}

@@ -33,9 +33,21 @@ var castagnoli = crc32.MakeTable(crc32.Castagnoli)
 
 // measurements are the kinds of measurements in checkpoints, by number.
 var measurements = []sensor.Measurement{
-	sensor.Travel{}, sensor.Turn{}, sensor.Displacement{}, sensor.BodyDisplacement{}, sensor.Speed{},
-	sensor.HeadingFix{}, sensor.Clearance{}, sensor.Sounding{}, sensor.Barometer{}, sensor.Range{}, sensor.Bearing{},
-	sensor.AcousticBearing{}, sensor.Fix{}, sensor.Sighting{}, sensor.Standstill{},
+	sensor.Travel{},
+	sensor.Turn{},
+	sensor.Displacement{},
+	sensor.BodyDisplacement{},
+	sensor.Speed{},
+	sensor.HeadingFix{},
+	sensor.Clearance{},
+	sensor.Sounding{},
+	sensor.Barometer{},
+	sensor.Range{},
+	sensor.Bearing{},
+	sensor.AcousticBearing{},
+	sensor.Fix{},
+	sensor.Sighting{},
+	sensor.Standstill{},
 }
 
 // layout is that of this program.

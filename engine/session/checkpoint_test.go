@@ -130,8 +130,18 @@ func TestFieldsOfCheckpoints(t *testing.T) {
 		v      any
 		fields int
 	}{
-		{Session{}, 49}, {state{}, 20}, {aside{}, 10}, {snapshot{}, 2}, {log{}, 7}, {source{}, 3}, {spoken{}, 2},
-		{voice{}, 3}, {lastEvent{}, 3}, {lead{}, 8}, {pace{}, 1}, {search{}, 5},
+		{Session{}, 49},
+		{state{}, 20},
+		{aside{}, 10},
+		{snapshot{}, 2},
+		{log{}, 7},
+		{source{}, 3},
+		{spoken{}, 2},
+		{voice{}, 3},
+		{lastEvent{}, 3},
+		{lead{}, 8},
+		{pace{}, 1},
+		{search{}, 5},
 	} {
 		if typ := reflect.TypeOf(c.v); typ.NumField() != c.fields {
 			t.Errorf("%v has %d fields and had %d: see whether its code (checkpoint.go) must go through the new one, then write the number here", typ, typ.NumField(), c.fields)

@@ -272,7 +272,7 @@ func TestAgainstFlights(t *testing.T) {
 	}
 	n, runs, durationS := 3, 0, 120.0
 	if accept.Long() {
-		n, runs, durationS = 200, 200, 300
+		n, runs, durationS = 200, 200, 180
 	}
 	res, err := heightfile.Read(outside.Path(t, "trinidad.nc"), heightfile.Options{Unit: heightfile.Foot})
 	if err != nil {

@@ -54,10 +54,12 @@ const (
 	limitNats  = 1.92
 )
 
-// Tuned is what came out for a figure.
+// Tuned is what came out for a figure. Before is what the suite had, or, if it is
+// not Given, where the search began.
 type Tuned struct {
 	Key    string  `json:"key"`
 	Before float64 `json:"before"`
+	Given  bool    `json:"given"`
 	Low    float64 `json:"low"`
 	High   float64 `json:"high"`
 	// Known is one of the constants above; Value the estimate or the limit, null if
@@ -186,7 +188,7 @@ func begin(suite *sensor.Suite, drives []Drive, o Options) (*search, *Result, er
 		}
 		s.keys = append(s.keys, f.Key)
 		s.low, s.high, s.best = append(s.low, math.Log(f.Low)), append(s.high, math.Log(f.High)), append(s.best, math.Log(v))
-		r.Figures = append(r.Figures, Tuned{Key: f.Key, Before: v, Low: f.Low, High: f.High})
+		r.Figures = append(r.Figures, Tuned{Key: f.Key, Given: ok, Before: v, Low: f.Low, High: f.High})
 		if name, ok := noiseOf(suite, f.Key); ok {
 			noise[name] = true
 		}

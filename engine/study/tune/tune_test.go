@@ -97,7 +97,7 @@ func TestRecovers(t *testing.T) {
 	trials, n, durationS, cells := 1, 1, 50.0, 200
 	figures := []Figure{{Key: altimeterKey, Low: 0.5, High: 15}, {Key: odometryKey, Low: 0.1, High: 3}}
 	if accept.Long() {
-		trials, n, durationS, cells = 50, 2, 240, 2000
+		trials, n, durationS, cells = 50, 2, 60, 300
 	}
 	within := [2]int{}
 	var z [2][]float64
