@@ -77,7 +77,7 @@ export function Alarms() {
                         {a.seenBy} <small>{clockTimes(a.seenAt)}</small> {a.note}
                       </>
                     ) : (
-                      <button onClick={() => void see(a)} aria-label={`I have seen alarm ${a.number}, ${alarmWords(a.alarm, a.lost)}, of ${a.vehicle}`}>
+                      <button onClick={() => void see(a)} aria-label={`I have seen it: alarm ${a.number}, ${alarmWords(a.alarm, a.lost)}, of ${a.vehicle}`}>
                         I have seen it
                       </button>
                     )}

@@ -185,11 +185,12 @@ function followClosely() {
   const name = chosen.value;
   if (!name || document.hidden) return; // a tab that nobody sees holds no stream
   let drive = "";
+  let remembers = false;
   leave = follow(
     { vehicles: [name], detail: Detail.BELIEF, minIntervalS: 0.1 },
     {
       link: (l) => (closeTrouble.value = l.why),
-      begins: () => void remember(name),
+      begins: () => (remembers = false),
       news: (m) => {
         if (name !== chosen.value) return;
         if (m.news.case === "withdrawn") {
@@ -198,6 +199,10 @@ function followClosely() {
         }
         if (m.news.case !== "posterior") return;
         const posterior = m.news.value;
+        if (!remembers) {
+          remembers = true; // not before: there may be no such vehicle
+          void remember(name);
+        }
         batch(() => {
           if (drive && drive !== m.drive) past.value = [];
           drive = m.drive;

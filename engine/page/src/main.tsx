@@ -52,10 +52,10 @@ function Page() {
   const open = openAlarms.value.length;
   return (
     <>
-      <a class="skip" href="#list" onClick={(e) => (e.preventDefault(), document.querySelector<HTMLElement>("main")?.focus())}>
+      <header>
+      <a class="skip" href="#content" onClick={(e) => (e.preventDefault(), document.querySelector<HTMLElement>("main")?.focus())}>
         To the content
       </a>
-      <header>
         <h1>Leadline</h1>
         <nav aria-label="Views">
           {views.map(([name, words]) => (
@@ -83,18 +83,18 @@ function Page() {
             </select>
           </label>
         </div>
-      </header>
       <p class="caution">
         <strong>An aid, not certified.</strong> A position may be wrong although it is called located. Defer to charts, controllers, local rules and licensed navigators.
       </p>
+      </header>
       <Identity />
       <AlarmSound />
-      <main tabIndex={-1} class={v}>
+      <main id="content" tabIndex={-1} class={v}>
         {(v === "now" || v === "chances") && (
           <>
             <List />
             <MapView />
-            <section class="side" aria-label={v === "now" ? `Figures of ${chosen.value || "no vehicle"}` : `Chances of ${chosen.value || "no vehicle"}`}>
+            <section class="side" tabIndex={0} aria-label={v === "now" ? `Figures of ${chosen.value || "no vehicle"}` : `Chances of ${chosen.value || "no vehicle"}`}>
               <h2>
                 {chosen.value || "No vehicle"} <small>{v === "now" ? "how sure, and why" : "chances"}</small>
               </h2>

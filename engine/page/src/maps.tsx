@@ -82,7 +82,7 @@ export function Maps() {
           <article key={m.name}>
             <h3>{m.name}</h3>
             <Facts m={m} />
-            <button onClick={() => void check(m.name)} aria-label={`Check the map ${m.name}`}>
+            <button onClick={() => void check(m.name)} aria-label={`Check it: the map ${m.name}`}>
               Check it
             </button>
             {checks.value[m.name] && (
