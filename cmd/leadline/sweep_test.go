@@ -1,0 +1,41 @@
+package main
+
+import (
+	"path/filepath"
+	"strings"
+	"testing"
+
+	"leadline/engine/study/results"
+)
+
+// TestSweepAndCompare: a sweep over the README's drive, taken up again, and a gate
+// over what it left, by the command line alone.
+func TestSweepAndCompare(t *testing.T) {
+	dir := t.TempDir()
+	town, out := filepath.Join(dir, "quillmere.roads.arrow"), filepath.Join(dir, "out")
+	drive := filepath.Join(checkout, "docs", "first.drive.jsonl")
+	status := func(want int, says string, args ...string) {
+		t.Helper()
+		var o, e strings.Builder
+		got := run(args, &o, &e)
+		if all := o.String() + e.String(); got != want || !strings.Contains(all, says) {
+			t.Errorf("leadline %s: status %d, want %d with %q: %s", strings.Join(args, " "), got, want, says, all)
+		}
+	}
+	status(exitDone, "", "map", "roads", filepath.Join(checkout, "fixtures", "roads", "quillmere.geojson"), "-o", town)
+	sweep := []string{"replay", drive, "--map", town, "--out", out, "--set", "vehicle.corner_sigma_m=2", "--set", "vehicle.corner_sigma_m=3"}
+	status(exitDone, "2 settings tried so far, 2 runs here, 0 of them from an earlier job", sweep...)
+	status(exitDone, "2 of them from an earlier job", sweep...)
+	names, err := results.Settings(out)
+	if err != nil || len(names) != 2 {
+		t.Fatalf("%v, %v", names, err)
+	}
+	a, b := filepath.Join(out, names[0]), filepath.Join(out, names[1])
+	status(exitDone, "1 drives compared", "compare", a, b, "--fail-if", "log_evidence > 1e9")
+	status(exitFailure, `--fail-if "drives == 1" holds`, "compare", a, b, "--fail-if", "drives == 1")
+	status(exitBad, "it ends where", "compare", a, b, "--fail-if", "drives ==")
+	status(exitBad, "holds no results", "compare", dir, b)
+	status(exitBad, "vehicle.nonsense", "replay", drive, "--map", town, "--set", "vehicle.nonsense=1")
+	status(exitBad, "is no KEY=VALUE", "replay", drive, "--map", town, "--set", "vehicle")
+	status(exitBad, "give three", "replay", drive, "--map", town, "--truth-offset", "1,2")
+}
