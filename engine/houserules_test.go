@@ -45,10 +45,11 @@ var mayImport = map[string][]string{
 	"engine/journal":           {},
 	"engine/server": {
 		"engine/session", "engine/traffic", "engine/sensor", "engine/summary", "engine/monitor",
-		"engine/filter", "engine/geo", "engine/journal", "engine/wire", "engine/server/web", "engine/server/identity", api,
+		"engine/filter", "engine/geo", "engine/journal", "engine/wire", "engine/server/web", "engine/server/identity", "engine/server/operate", api,
 	},
 	"engine/server/web":      {api},
 	"engine/server/identity": {},
+	"engine/server/operate":  {},
 	"engine/client":          {api},
 	"engine/logfile":         {"engine/sensor", "engine/geo"},
 	"engine/livelog":         {"engine/logfile"},
@@ -85,7 +86,7 @@ var mayImport = map[string][]string{
 var notKernel = []string{"fixtures/sim", "fixtures/heights", "fixtures/reference", "fixtures/outside", "fixtures/outside/fetch", "tools/..."}
 
 // knowProtobuf may import the API and the protobuf and gRPC libraries.
-var knowProtobuf = []string{api, "engine/server", "engine/server/web", "engine/client", "engine/page", "engine/wire", "engine/drivefile", "cmd/leadline"}
+var knowProtobuf = []string{api, "engine/server", "engine/server/web", "engine/server/operate", "engine/client", "engine/page", "engine/wire", "engine/drivefile", "cmd/leadline"}
 
 // wireFormat is not our API: OpenStreetMap's PBF files are coded in protobuf's
 // wire format, and its reader takes them apart itself.

@@ -29,6 +29,7 @@ type serveOptions struct {
 	uploads      string
 	listen       string
 	accessOptions
+	operateOptions
 	maxCells, vehicles  int
 	drainTimeout        time.Duration
 	logFormat, logLevel choice
@@ -62,6 +63,7 @@ Without either a server that stops forgets its vehicles.`,
 	f.StringVar(&o.uploads, "uploads", "", "folder that keeps maps which clients send; none are taken without it")
 	f.StringVar(&o.listen, "listen", defaultAddress, "address to listen on; port 0 takes a free one")
 	o.accessOptions.flags(c)
+	o.operateOptions.flags(c)
 	f.StringArrayVar(&o.origins, "origin", nil, "origin whose pages may call from a browser, such as https://map.example; repeat for several")
 	f.IntVar(&o.vehicles, "max-vehicles", defaultVehicles, "greatest number of vehicles at once")
 	f.IntVar(&o.maxCells, "max-cells", defaultCells, "greatest number of cells of a belief")
@@ -129,31 +131,31 @@ func (o *serveOptions) config() (cfg *server.Config, closeMaps func(), err error
 		name, path := named(arg, mapName)
 		m, err := openMap(path)
 		if err != nil {
-			return nil, closeMaps, err
+			return cfg, closeMaps, err
 		}
 		opened = append(opened, m)
 		cfg.Maps = append(cfg.Maps, m.served(name))
 	}
 	if cfg.Journal, err = o.keep.options(); err != nil {
-		return nil, closeMaps, err
+		return cfg, closeMaps, err
 	}
 	if o.uploads != "" {
 		cfg.Uploads = uploadsTo(o.uploads)
 	}
 	for _, name := range sensor.StarterNames() {
 		if cfg.Suites[name], err = openSuite(name); err != nil {
-			return nil, closeMaps, err
+			return cfg, closeMaps, err
 		}
 	}
 	given := map[string]bool{}
 	for _, arg := range o.suites {
 		name, path := named(arg, suiteName)
 		if given[name] {
-			return nil, closeMaps, fmt.Errorf("two suites are called %q: rename one", name)
+			return cfg, closeMaps, fmt.Errorf("two suites are called %q: rename one", name)
 		}
 		given[name] = true
 		if cfg.Suites[name], err = openSuite(path); err != nil {
-			return nil, closeMaps, err
+			return cfg, closeMaps, err
 		}
 	}
 	return cfg, closeMaps, cfg.Validate()

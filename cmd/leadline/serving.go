@@ -22,6 +22,8 @@ type serving struct {
 	server    *server.Server
 	done      chan error // what Serve ends with
 	closeMaps func()
+	// stopOperator ends what answers operators, after all else.
+	stopOperator func()
 }
 
 // start opens maps and suites and serves them.
@@ -30,32 +32,41 @@ func (o *serveOptions) start(log *slog.Logger) (*serving, error) {
 		return nil, err
 	}
 	cfg, closeMaps, err := o.config()
+	cfg.Log, cfg.Version = log, versionText()
 	if err == nil {
-		err = o.apply(cfg, log)
+		err = errors.Join(o.accessOptions.apply(cfg, log), o.operateOptions.apply(cfg))
 	}
 	if err != nil {
 		closeMaps()
+		o.operateOptions.close(log)
 		return nil, err
 	}
-	cfg.Log, cfg.Version = log, versionText()
 	if cfg.Journal != nil {
 		if cfg.Build, err = buildIdentity(); err != nil {
 			closeMaps()
+			o.operateOptions.close(log)
 			return nil, err
 		}
 	}
 	s, err := server.New(*cfg)
 	if err != nil {
 		closeMaps()
+		o.operateOptions.close(log)
 		return nil, err
 	}
 	l, err := net.Listen("tcp", o.listen)
 	if err != nil {
 		closeMaps()
+		o.operateOptions.close(log)
 		return nil, fmt.Errorf("--listen %s: %w: give another address or port", o.listen, errors.Unwrap(err))
 	}
 	out := &serving{address: l.Addr().String(), server: s, done: make(chan error, 1), closeMaps: closeMaps}
 	out.maps = s.MapNames()
+	if o.encrypts() {
+		cfg.Metrics.Gauge("leadline_certificate_end_seconds", "When the server's certificate ends, s since 1970.", nil,
+			func() float64 { return float64(o.encryption.Until().Unix()) })
+	}
+	out.stopOperator = o.serve(s, cfg.Metrics, log)
 	go func() { out.done <- s.Serve(l) }()
 	return out, nil
 }
@@ -68,6 +79,7 @@ func (s *serving) stop(wait time.Duration) (cut bool, err error) {
 	cut = s.server.Shutdown(ctx) != nil
 	err = <-s.done
 	s.closeMaps()
+	s.stopOperator()
 	return cut, err
 }
 
@@ -81,6 +93,7 @@ func (s *serving) untilSignalled(log *slog.Logger, wait time.Duration, ready fun
 	select {
 	case err := <-s.done:
 		s.closeMaps()
+		s.stopOperator()
 		return err
 	case got := <-signals:
 		log.Info("stopping", "signal", got.String(), "wait", wait)

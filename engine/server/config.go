@@ -8,10 +8,13 @@ import (
 	"net/http"
 	"time"
 
+	"google.golang.org/grpc/stats"
+
 	"leadline/engine/filter"
 	"leadline/engine/geo"
 	"leadline/engine/journal"
 	"leadline/engine/sensor"
+	"leadline/engine/server/operate"
 	"leadline/engine/session"
 	"leadline/engine/summary"
 )
@@ -43,6 +46,14 @@ type Config struct {
 	Access *Access
 	// Encryption, if set, encrypts every connection.
 	Encryption *tls.Config
+	// Metrics counts what the server does; nil counts for nobody. One server
+	// takes it.
+	Metrics *operate.Metrics
+	// Traces, if set, gets the calls over gRPC.
+	Traces stats.Handler
+	// Checks say, by name, why the server cannot serve for now; nil that it can.
+	// They are asked every few seconds, and must not wait.
+	Checks map[string]func() error
 	// Origins are those whose pages may call the API from a browser, beside
 	// pages of this server: scheme, host and port.
 	Origins []string

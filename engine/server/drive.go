@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"slices"
 	"strconv"
+	"strings"
 
 	"google.golang.org/protobuf/types/known/timestamppb"
 
@@ -52,6 +53,7 @@ func (o *owner) takeBatch(b *leadlinev1.Batch) {
 		r.Accepted++
 	}
 	o.sequence = b.GetSequence()
+	o.measured()
 	o.tell(&n)
 	o.receipt(r)
 }
@@ -66,9 +68,11 @@ func (o *owner) enter(n *news, i int, m *leadlinev1.SensorMeasurement) *leadline
 			panic(fmt.Sprintf("batch after %d, measurement %d: %v", o.sequence, i, err)) // only refusals are agreed
 		}
 		o.log.refused(refused)
+		o.srv.cfg.Metrics.Refused(strings.TrimPrefix(refused.GetReason().String(), "REASON_"))
 		o.subject.recent.add(m, refused)
 		return refused
 	}
+	o.srv.cfg.Metrics.Accepted()
 	o.subject.recent.add(m, nil)
 	o.publish(n, ps)
 	return nil
@@ -125,6 +129,7 @@ func (o *owner) publish(n *news, ps []*summary.Posterior) {
 		}
 	}
 	o.posteriors -= uint64(len(gone))
+	o.srv.cfg.Metrics.Released(len(ps))
 	o.latest.Store(o.sess.Latest())
 	o.log.now(o.sess.Latest())
 	o.trail.take(ps, gone)

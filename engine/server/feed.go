@@ -104,6 +104,7 @@ func (s *Server) first(ctx context.Context, requests <-chan received) (*leadline
 // no further.
 func (s *Server) carry(ctx context.Context, stream feedStream, requests <-chan received, o *owner, a *attachment) error {
 	var held *work
+	cameAt := map[uint64]time.Time{} // batches without a receipt: those that wait at the owner, and the held one
 	draining := s.draining
 	stopping := false
 	for {
@@ -124,6 +125,9 @@ func (s *Server) carry(ctx context.Context, stream feedStream, requests <-chan r
 				return err
 			}
 			held = &next
+			if next.batch != nil {
+				cameAt[next.batch.GetSequence()] = time.Now()
+			}
 			if next.hangup || next.end {
 				requests = nil // nothing more is taken
 			}
@@ -139,6 +143,14 @@ func (s *Server) carry(ctx context.Context, stream feedStream, requests <-chan r
 			}
 			if err := stream.Send(it.message); err != nil {
 				return err
+			}
+			if r := it.message.GetReceipt(); r != nil {
+				for sequence, came := range cameAt {
+					if sequence <= r.GetSequence() { // a receipt is for all before it, too
+						s.cfg.Metrics.Acknowledged(time.Since(came))
+						delete(cameAt, sequence)
+					}
+				}
 			}
 		case <-a.taken:
 			return o.takenOver()

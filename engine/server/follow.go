@@ -65,6 +65,7 @@ func (s *Server) Follow(req *leadlinev1.FollowRequest, stream grpc.ServerStreami
 		if u != nil {
 			m := s.followed(f, u)
 			token = m.GetResumeToken()
+			s.cfg.Metrics.Skipped(u.skipped)
 			if err := stream.Send(m); err != nil {
 				return err
 			}

@@ -32,6 +32,7 @@ type owner struct {
 	err    error
 	// latest is the latest posterior, nil before the first. It is not changed.
 	latest atomic.Pointer[summary.Posterior]
+	cells  atomic.Int64 // of the belief
 	// subject is the drive as those see it who follow the vehicle.
 	subject *subject
 

@@ -213,7 +213,7 @@ func (s *Server) revive(h *history) (o *owner, err error) {
 	if err != nil {
 		return nil, refuse(leadlinev1.Reason_REASON_JOURNAL_DAMAGED, on, "drive %q of vehicle %q: its header in the journal: %v", h.open.GetDrive(), h.vehicle(), err)
 	}
-	beside := &searches{slots: s.searching}
+	beside := &searches{slots: s.searching, waiting: &s.searchesWaiting}
 	cfg := session.Config{
 		Vehicle: h.vehicle(), Space: m.Space, Names: m.Names, Suite: suite,
 		Start: start(wh.Start), MaxCells: h.opened.MaxCells, Begin: beside.begin,

@@ -1,6 +1,9 @@
 package server
 
-import "sync"
+import (
+	"sync"
+	"sync/atomic"
+)
 
 // searchesAtOnce on a whole server: each takes a core for seconds, and what a
 // thousand openings take of memory.
@@ -11,6 +14,7 @@ const searchesAtOnce = 2
 // meanwhile, and few at once on the whole server.
 type searches struct {
 	slots   chan struct{} // the server's, holds a token each that runs
+	waiting *atomic.Int64 // the server's, counts those that wait for one
 	running sync.WaitGroup
 }
 
@@ -19,7 +23,9 @@ type searches struct {
 func (s *searches) begin(work func()) (wait func()) {
 	ended := make(chan any, 1)
 	s.running.Go(func() {
+		s.waiting.Add(1)
 		s.slots <- struct{}{}
+		s.waiting.Add(-1)
 		defer func() {
 			<-s.slots
 			ended <- recover()

@@ -12,7 +12,7 @@ import (
 // TestSearches: work runs beside who began it, no more of it at once than there
 // are slots, and its end and its panic come to whoever waits.
 func TestSearches(t *testing.T) {
-	s := &searches{slots: make(chan struct{}, 2)}
+	s := &searches{slots: make(chan struct{}, 2), waiting: new(atomic.Int64)}
 	var running, most, done atomic.Int32
 	var waits []func()
 	for range 8 {

@@ -16,6 +16,7 @@ import (
 	"google.golang.org/grpc/reflection"
 
 	"leadline/engine/journal"
+	"leadline/engine/server/operate"
 	"leadline/engine/server/web"
 	"leadline/engine/session"
 	leadlinev1 "leadline/proto/leadline/v1"
@@ -33,12 +34,15 @@ type Server struct {
 	openings    chan struct{} // holds a token a session being made
 	predictions chan struct{} // and one a belief being carried on
 	searching   chan struct{} // and one a search of a whole map
-	streams     atomic.Int64
-	drawing     chan struct{} // and one a map being drawn
-	hub         *hub
-	alarms      *alarmBook
-	atlas       *atlas
-	journal     *journal.Journal // nil: nothing is durable
+	// searchesWaiting counts those for which there is no token.
+	searchesWaiting atomic.Int64
+	serving         atomic.Bool // it has begun to listen
+	streams         atomic.Int64
+	drawing         chan struct{} // and one a map being drawn
+	hub             *hub
+	alarms          *alarmBook
+	atlas           *atlas
+	journal         *journal.Journal // nil: nothing is durable
 	// uploads is nil where none are taken; uploading holds a token each.
 	uploads   *Uploads
 	uploading chan struct{}
@@ -67,6 +71,9 @@ func New(cfg Config) (*Server, error) {
 	if cfg.Now == nil {
 		cfg.Now = time.Now
 	}
+	if cfg.Metrics == nil {
+		cfg.Metrics = operate.NewMetrics(cfg.Version)
+	}
 	if cfg.Log == nil {
 		cfg.Log = slog.New(slog.DiscardHandler)
 	}
@@ -84,22 +91,26 @@ func New(cfg Config) (*Server, error) {
 		alarms:      newAlarmBook(cfg.Now),
 		atlas:       newAtlas(cfg.Maps),
 	}
-	s.grpc = grpc.NewServer(
+	options := []grpc.ServerOption{
 		grpc.Creds(web.Credentials()),
 		grpc.MaxRecvMsgSize(cfg.Limits.MessageBytes),
-		grpc.MaxHeaderListSize(16<<10),
+		grpc.MaxHeaderListSize(16 << 10),
 		// Of one connection: beyond, its calls wait unanswered, so that all
 		// the streams there may be, and some calls, must go through one.
-		grpc.MaxConcurrentStreams(uint32(cfg.Limits.Streams+1000)),
+		grpc.MaxConcurrentStreams(uint32(cfg.Limits.Streams + 1000)),
 		grpc.WaitForHandlers(true),
-		grpc.ConnectionTimeout(10*time.Second), // for HTTP/2's handshake
-		grpc.UnaryInterceptor(s.aroundUnary), grpc.StreamInterceptor(s.aroundStream),
+		grpc.ConnectionTimeout(10 * time.Second), // for HTTP/2's handshake
+		grpc.UnaryInterceptor(s.meteredUnary), grpc.StreamInterceptor(s.meteredStream),
 		grpc.UnknownServiceHandler(s.unknown),
 		// A half-open connection is found within 40 s; clients may look as
 		// often as every 10 s, also between streams.
 		grpc.KeepaliveParams(keepalive.ServerParameters{Time: 30 * time.Second, Timeout: 10 * time.Second}),
 		grpc.KeepaliveEnforcementPolicy(keepalive.EnforcementPolicy{MinTime: 10 * time.Second, PermitWithoutStream: true}),
-	)
+	}
+	if cfg.Traces != nil {
+		options = append(options, grpc.StatsHandler(cfg.Traces))
+	}
+	s.grpc = grpc.NewServer(options...)
 	leadlinev1.RegisterPositionServiceServer(s.grpc, s)
 	healthv1.RegisterHealthServer(s.grpc, s.health)
 	reflection.Register(s.grpc)
@@ -107,7 +118,7 @@ func New(cfg Config) (*Server, error) {
 	s.web, err = web.New(web.Config{
 		MessageBytes: cfg.Limits.MessageBytes, Connections: cfg.Limits.HTTPConnections,
 		Origins: cfg.Origins, Page: cfg.Page, Log: cfg.Log,
-		Unary: s.aroundUnary, Stream: s.aroundStream,
+		Unary: s.meteredUnary, Stream: s.meteredStream,
 	})
 	if err != nil {
 		return nil, err
@@ -123,14 +134,27 @@ func New(cfg Config) (*Server, error) {
 		if err := s.openJournal(); err != nil {
 			return nil, err
 		}
+		s.meterJournal()
 	}
-	s.health.SetServingStatus(leadlinev1.PositionService_ServiceDesc.ServiceName, healthv1.HealthCheckResponse_SERVING)
+	s.tellHealth()
+	cfg.Metrics.Watch(s.fleet)
 	return s, nil
 }
 
 // Serve answers on a listener, which it closes, until Shutdown; then it
 // returns nil. HTTP/2 is taken for gRPC, all else for HTTP/1.1.
 func (s *Server) Serve(l net.Listener) error {
+	s.serving.Store(true)
+	s.tellHealth()
+	watching := make(chan struct{})
+	go func() {
+		defer close(watching)
+		s.watchHealth()
+	}()
+	defer func() { // with the server's end, also where it fails
+		s.drain.Do(func() { close(s.draining) })
+		<-watching
+	}()
 	http2, others := web.Split(l, s.cfg.Encryption)
 	answered := make(chan error, 1)
 	go func() { answered <- s.web.Serve(others) }()
