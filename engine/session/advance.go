@@ -72,13 +72,15 @@ func (s *Session) due(t sensor.Time) bool {
 
 // A wide belief is one that nobody reads in detail: it costs much and says
 // little. Above wideSize cells or Gaussians, times at which nothing but motion
-// came are passed over until the vehicle has moved strideShare of a cell, at
-// most maxStrideS; posteriors come at most every widePosteriorS, above
+// came are passed over until the vehicle has moved strideShare of a cell, or
+// strideM if that is more (a bend is averaged over 3 m in any case), at most
+// maxStrideS; posteriors come at most every widePosteriorS, above
 // hugeSize every hugePosteriorS. All of it follows from the events alone.
 const (
 	wideSize       = 4_000
 	hugeSize       = 20_000
 	strideShare    = 0.25
+	strideM        = 2.0
 	maxStrideS     = 1.0
 	widePosteriorS = 1.0
 	hugePosteriorS = 5.0
@@ -93,7 +95,7 @@ func (s *Session) stride() float64 {
 		return 0
 	}
 	v := math.Abs(s.state.speed.MPS)
-	return math.Min(maxStrideS, strideShare*s.cellM()/math.Max(v, 1))
+	return math.Min(maxStrideS, math.Max(strideShare*s.cellM(), s.strideM)/math.Max(v, 1))
 }
 
 // silent reports whether the posterior at t is passed over. A lattice is
@@ -203,10 +205,10 @@ func (s *Session) cellM() float64 {
 }
 
 // Cells of a wide belief on lines are coarse: below maxCells/refineShare a
-// level finer is affordable (each level doubles the Gaussians at most), above
+// level finer is worth its cost (each level doubles the Gaussians at most), above
 // maxCells a coarser one is needed. In a gap, which only widens a belief, cells
 // are not refined.
-const refineShare = 8
+const refineShare = 24
 
 // adapt follows the belief's width with the resolution.
 func (s *Session) adapt() {

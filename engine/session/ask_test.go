@@ -17,7 +17,7 @@ import (
 func TestAnswersAreOfThePresent(t *testing.T) {
 	c := crossing()
 	s := open(t, Config{Space: c, Names: c, MaxCells: 20000})
-	s.wideSize, s.hugeSize = 14, 300
+	s.wideSize, s.hugeSize, s.strideM = 14, 300, 0
 	f := c.Frame()
 	area := [][]geo.LonLat{{f.Inverse(geo.Point{E: -50, N: -50}), f.Inverse(geo.Point{E: 200, N: -50}), f.Inverse(geo.Point{E: 30, N: 105}), f.Inverse(geo.Point{E: -50, N: 105})}}
 	if _, err := s.Region(0.5); !errors.Is(err, summary.ErrNothing) {

@@ -130,7 +130,7 @@ func TestFieldsOfCheckpoints(t *testing.T) {
 		v      any
 		fields int
 	}{
-		{Session{}, 49},
+		{Session{}, 51},
 		{state{}, 20},
 		{aside{}, 10},
 		{snapshot{}, 2},

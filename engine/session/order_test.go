@@ -85,7 +85,7 @@ func TestOrderOfArrivalDoesNotMatter(t *testing.T) {
 	wide := func(t *testing.T) *Session {
 		c := crossing()
 		s := open(t, Config{Space: c, Names: c, MaxCells: 20000})
-		s.wideSize, s.hugeSize = 14, 300 // it starts with 450 cells; located it has 10 to 35
+		s.wideSize, s.hugeSize, s.strideM = 14, 300, 0 // it starts with 450 cells; located it has 10 to 35
 		return s
 	}
 	for _, c := range []struct {

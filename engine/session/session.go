@@ -137,7 +137,7 @@ type Session struct {
 	// hold is the suite's hold_s, still for how long a standstill speaks.
 	hold, still                    sensor.Time
 	wideSize, hugeSize, maxWaiting int // the constants, less in tests
-	maxCarried                     float64
+	maxCarried, strideM            float64
 	followed                       float64 // work of the present move
 	followLimit                    float64 // in tests, see maxFollowed
 	// What is kept beside a belief on roads, see aside.
@@ -216,7 +216,7 @@ func prepare(c Config) (*Session, error) {
 	}
 	s := &Session{
 		vehicle: c.Vehicle, space: c.Space, names: c.Names, dim: 2, maxCells: c.MaxCells, hasher: summary.NewHasher(),
-		beginWork: c.Begin, unguarded: c.Unguarded, wideSize: wideSize, hugeSize: hugeSize, maxWaiting: maxWaiting,
+		beginWork: c.Begin, unguarded: c.Unguarded, wideSize: wideSize, hugeSize: hugeSize, strideM: strideM, maxWaiting: maxWaiting,
 	}
 	if s.maxCells == 0 {
 		s.maxCells = defaultMaxCells

@@ -119,11 +119,15 @@ func (s *Session) far(step filter.Step) (shiftM float64, far bool) {
 	return shiftM, shiftM > partShiftM || step.Q[0] > partM*partM
 }
 
+// scatterShare is the part of maxCells that a belief which is scattered begins
+// with at most.
+const scatterShare = 8
+
 // scatter takes what is left of a step without following it over the roads.
 func (s *Session) scatter(step filter.Step, left, shiftM float64) {
 	k := len(step.Add)
 	varM2 := float64(left*left)*shiftM*shiftM + float64(left*step.Q[0])
-	if err := filter.Scatter(s.state.belief, s.lines, varM2, s.maxCells/refineShare, &s.work); err != nil {
+	if err := filter.Scatter(s.state.belief, s.lines, varM2, s.maxCells/scatterShare, &s.work); err != nil {
 		panic(fmt.Sprintf("session: %v", err)) // the belief itself is on the roads
 	}
 	// The other quantities' parts: what they gain does not depend on the place.
