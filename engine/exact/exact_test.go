@@ -6,12 +6,14 @@ import (
 	"testing"
 )
 
-type shape interface{ area() float64 }
-type square struct{ Side float64 }
-type blob struct {
-	Parts []shape
-	Name  string
-}
+type (
+	shape  interface{ area() float64 }
+	square struct{ Side float64 }
+	blob   struct {
+		Parts []shape
+		Name  string
+	}
+)
 
 func (square) area() float64 { return 0 }
 func (blob) area() float64   { return 0 }
@@ -43,8 +45,17 @@ type everything struct {
 
 func sample() everything {
 	return everything{
-		true, math.MinInt64, -128, math.MaxUint64, 65535, math.Copysign(0, -1), "a\x00ü", []float64{1, math.Inf(-1), 5e-324}, nil, []string{},
-		[3]float64{1, 2, 3}, []string{"x", "", "x"}, &square{2}, nil, blob{[]shape{square{1}, nil, blob{}}, "b"}, nil, hidden{-7}, []hidden{{1}, {2}},
+		true, math.MinInt64, -128, math.MaxUint64, 65535, math.Copysign(0, -1), "a\x00ü",
+		[]float64{1, math.Inf(-1), 5e-324},
+		nil,
+		[]string{},
+		[3]float64{1, 2, 3},
+		[]string{"x", "", "x"},
+		&square{2}, nil,
+		blob{[]shape{square{1}, nil, blob{}}, "b"},
+		nil,
+		hidden{-7},
+		[]hidden{{1}, {2}},
 	}
 }
 

@@ -26,7 +26,7 @@ func drawRelief(ctx context.Context, out *leadlinev1.DrawMapResponse, p filter.P
 	}
 	width, height := b.Max.E-b.Min.E, b.Max.N-b.Min.N
 	step := math.Max(out.DetailM, p.DetailM()/8) // between samples of the map nothing is seen
-	columns, rows := 0, 0
+	var columns, rows int
 	for ; ; step *= 1.1 {
 		// An area of no width is a line of samples.
 		columns, rows = int(math.Min(width/step, maxReliefSamples))+1, int(math.Min(height/step, maxReliefSamples))+1

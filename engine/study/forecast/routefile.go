@@ -169,7 +169,7 @@ func (r *Route) readGPX(text []byte) error {
 		return fmt.Errorf("it holds %d routes and tracks: a route is one; put others into files of their own", n)
 	}
 	var points []gpxPoint
-	name := ""
+	var name string
 	if len(g.Routes) == 1 {
 		name, points = g.Routes[0].Name, g.Routes[0].Points
 	} else {

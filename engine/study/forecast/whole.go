@@ -161,19 +161,18 @@ func Roads(space filter.LineSpace, suite *sensor.Suite, o WholeOptions) ([]Spot,
 	for i := range out {
 		s := &out[i]
 		s.Chart = int32(i)
-		chart, along, jumped := s.Chart, 0.0, 0.0
+		chart, along := s.Chart, 0.0
 		information := 0.0
 		for k := range profileSteps {
 			q := p.on(chart, along)
 			if k == 0 {
 				s.at, s.At = q.at, space.Frame().Inverse(q.at)
 			}
+			unwrapped := q.heading
 			if k > 0 {
-				jumped = s.profile[k-1] + geo.WrapPi(q.heading-s.profile[k-1])
-			} else {
-				jumped = q.heading
+				unwrapped = s.profile[k-1] + geo.WrapPi(q.heading-s.profile[k-1])
 			}
-			s.profile = append(s.profile, jumped)
+			s.profile = append(s.profile, unwrapped)
 			x := make([]float64, len(p.qs))
 			x[heading] = q.heading
 			if at, ok := p.linearize(align, q, x); ok {

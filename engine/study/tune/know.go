@@ -160,8 +160,8 @@ func (s *search) curve(r *Result) error {
 		return nil // no maximum along some direction: the profiles show it
 	}
 	var cov mat.SymDense
-	if err := chol.InverseTo(&cov); err != nil {
-		return nil
+	if chol.InverseTo(&cov) != nil {
+		return nil // as flat as makes no difference
 	}
 	r.Correlation = make([][]float64, n)
 	for a, i := range at {
