@@ -169,7 +169,7 @@ func (w *work) describe(driveSHA256 string) (results.Run, error) {
 		r.Set = append(r.Set, c.String())
 	}
 	key, err := json.Marshal([]any{
-		r.DriveSHA256, r.MapFingerprint, string(yaml), r.MaxCells, r.TruthOffset, j.EstimateTruth, j.HoldOutFixes, j.Formats,
+		r.DriveSHA256, r.MapFingerprint, string(yaml), r.MaxCells, r.TruthOffset, j.EstimateTruth, j.HoldOutFixes,
 		r.Version, r.Program, r.Architecture,
 	})
 	if err != nil {

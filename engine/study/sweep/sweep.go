@@ -56,8 +56,6 @@ type Job struct {
 	// Keep has outcomes hold what diagnoses need, for drives of at most MostKept
 	// bytes.
 	Keep bool
-	// Formats are further forms of tracks: "gpx", "parquet".
-	Formats []string
 
 	TruthOffset   score.Offset
 	EstimateTruth bool

@@ -1,5 +1,5 @@
-// Package track writes where a drive went: as a table, as GeoJSON, as GPX, as
-// Parquet, and as a picture over the map.
+// Package track writes where a drive went, as a table, as GeoJSON, and as a
+// picture over the map, and reads the table.
 package track
 
 import (
