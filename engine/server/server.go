@@ -136,7 +136,7 @@ func New(cfg Config) (*Server, error) {
 		}
 		s.meterJournal()
 	}
-	s.tellHealth()
+	_ = s.tellHealth()
 	cfg.Metrics.Watch(s.fleet)
 	return s, nil
 }
@@ -145,7 +145,7 @@ func New(cfg Config) (*Server, error) {
 // returns nil. HTTP/2 is taken for gRPC, all else for HTTP/1.1.
 func (s *Server) Serve(l net.Listener) error {
 	s.serving.Store(true)
-	s.tellHealth()
+	_ = s.tellHealth()
 	watching := make(chan struct{})
 	go func() {
 		defer close(watching)
