@@ -127,8 +127,12 @@ func TestWorse(t *testing.T) {
 		a, b float64
 		is   bool // b is worse
 	}{
-		{"p95_m", 3, 4, true}, {"coverage95", 0.95, 0.99, true}, {"coverage95", 0.90, 0.96, false},
-		{"right_road_fraction", 0.9, 0.8, true}, {"anees", 2, 1, true}, {"log_evidence", -5, -4, false},
+		{"p95_m", 3, 4, true},
+		{"coverage95", 0.95, 0.99, true},
+		{"coverage95", 0.90, 0.96, false},
+		{"right_road_fraction", 0.9, 0.8, true},
+		{"anees", 2, 1, true},
+		{"log_evidence", -5, -4, false},
 	} {
 		for i := range Figures {
 			if f := &Figures[i]; f.Name == c.name && (f.worse(c.b) > f.worse(c.a)) != c.is {
