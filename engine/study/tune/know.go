@@ -156,12 +156,12 @@ func (s *search) curve(r *Result) error {
 		}
 	}
 	var chol mat.Cholesky
-	if !chol.Factorize(h) {
+	if !chol.Factorize(h) || chol.Cond() > mat.ConditionTolerance {
 		return nil // no maximum along some direction: the profiles show it
 	}
 	var cov mat.SymDense
-	if chol.InverseTo(&cov) != nil {
-		return nil // as flat as makes no difference
+	if err := chol.InverseTo(&cov); err != nil {
+		return err
 	}
 	r.Correlation = make([][]float64, n)
 	for a, i := range at {
