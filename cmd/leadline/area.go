@@ -1,20 +1,13 @@
 package main
 
 import (
-	"bytes"
-	"encoding/json"
-	"errors"
 	"fmt"
 	"io"
 	"os"
 
-	"leadline/engine/geo"
 	"leadline/engine/wire"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
-
-// maxAreaBytes bounds an area's file: wire.MaxPoints points in full digits.
-const maxAreaBytes = 1 << 20
 
 // readArea reads a polygon from a GeoJSON file that a flag names.
 func readArea(flag, path string) (*leadlinev1.Polygon, error) {
@@ -26,67 +19,13 @@ func readArea(flag, path string) (*leadlinev1.Polygon, error) {
 		return nil, fmt.Errorf("%s: %w", flag, err)
 	}
 	defer f.Close()
-	text, err := io.ReadAll(io.LimitReader(f, maxAreaBytes+1))
+	text, err := io.ReadAll(io.LimitReader(f, wire.MaxGeoJSON+1))
 	if err != nil {
 		return nil, fmt.Errorf("%s: %w", flag, err)
 	}
-	p, err := parseArea(text)
+	p, err := wire.PolygonFromGeoJSON(text)
 	if err != nil {
 		return nil, fmt.Errorf("%s %s: %w", flag, path, err)
-	}
-	return p, nil
-}
-
-// geoJSON is what an area may be: a Polygon, or the one Polygon of features.
-type geoJSON struct {
-	Type        string
-	Coordinates json.RawMessage
-	Geometry    *geoJSON
-	Features    []geoJSON
-}
-
-// parseArea finds the only polygon of a GeoJSON text (RFC 7946).
-func parseArea(text []byte) (*leadlinev1.Polygon, error) {
-	if len(text) > maxAreaBytes {
-		return nil, fmt.Errorf("the file has over %d bytes: simplify the outline", maxAreaBytes)
-	}
-	var g geoJSON
-	d := json.NewDecoder(bytes.NewReader(text))
-	if err := d.Decode(&g); err != nil {
-		return nil, fmt.Errorf("byte %d: not valid JSON: %w", d.InputOffset(), err)
-	}
-	var rings [][][]float64
-	switch {
-	case g.Type == "FeatureCollection" && len(g.Features) == 1:
-		g = g.Features[0]
-	case g.Type == "FeatureCollection":
-		return nil, fmt.Errorf("it has %d features: give one with a Polygon", len(g.Features))
-	}
-	if g.Type == "Feature" && g.Geometry != nil {
-		g = *g.Geometry
-	}
-	if g.Type != "Polygon" {
-		return nil, fmt.Errorf("it holds a %.40q: give one Polygon", g.Type)
-	}
-	if err := json.Unmarshal(g.Coordinates, &rings); err != nil {
-		return nil, errors.New("coordinates are no list of rings of [lon, lat]")
-	}
-	area := make([][]geo.LonLat, len(rings))
-	for i, ring := range rings {
-		for j, c := range ring {
-			if len(c) < 2 {
-				return nil, fmt.Errorf("ring %d, point %d has %d numbers: want [lon, lat]", i, j, len(c))
-			}
-			p := geo.FromDegrees(c[0], c[1])
-			if err := p.Check(); err != nil {
-				return nil, fmt.Errorf("ring %d, point %d: %w", i, j, err)
-			}
-			area[i] = append(area[i], p)
-		}
-	}
-	p := wire.FromPolygon(area)
-	if _, err := wire.Polygon(p); err != nil {
-		return nil, err
 	}
 	return p, nil
 }

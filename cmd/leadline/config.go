@@ -8,6 +8,8 @@ import (
 	"strings"
 
 	"github.com/spf13/cobra"
+
+	"leadline/cmd/leadline/settings"
 )
 
 // An option is a flag that the environment or a file can give, too. What is
@@ -75,7 +77,7 @@ func configure(c *cobra.Command) error {
 	if path == "" && len(options) > 0 {
 		path = os.Getenv(configVariable)
 	}
-	var file map[string]configValue
+	var file map[string]settings.Value
 	if path != "" {
 		if file, err = readConfig(path, optionKeys(c.Root())); err != nil {
 			return err
@@ -94,9 +96,9 @@ func configure(c *cobra.Command) error {
 				return fmt.Errorf("%s: %w", s.variable(), err)
 			}
 		case inFile:
-			from = fmt.Sprintf("file %s:%d", path, v.line)
-			if err := assign(c, s, v.texts); err != nil {
-				return fmt.Errorf("%s:%d: %s: %w", path, v.line, s.key, err)
+			from = fmt.Sprintf("file %s:%d", path, v.Line)
+			if err := assign(c, s, v.Texts); err != nil {
+				return fmt.Errorf("%s:%d: %s: %w", path, v.Line, s.key, err)
 			}
 		}
 		if err := flags.SetAnnotation(s.flag, fromOf, []string{from}); err != nil {

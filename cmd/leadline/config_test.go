@@ -1,13 +1,14 @@
 package main
 
 import (
-	"maps"
 	"path/filepath"
 	"slices"
 	"strings"
 	"testing"
 
 	"github.com/spf13/cobra"
+
+	"leadline/cmd/leadline/settings"
 )
 
 // withEnv runs a command to its end with variables beside those of the test.
@@ -90,66 +91,6 @@ func TestSettingsReach(t *testing.T) {
 	bad(t, []string{"LEADLINE_MAX_CELLS", `"1e6"`, "whole number"}, "replay", drive)
 }
 
-// TestParseConfig: what is no file of settings is refused with its line.
-func TestParseConfig(t *testing.T) {
-	keys := []string{"listen", "map", "max_cells"}
-	got, err := parseConfig("s.yaml", []byte("# none yet\n\nmap:\n  - a=b.roads.arrow # the town\n  - \"c d\"\n  - ''\nlisten: 'x:1'\nmax_cells: 1_000\n"), keys)
-	want := map[string]configValue{"map": {[]string{"a=b.roads.arrow", "c d", ""}, 3}, "listen": {[]string{"x:1"}, 7}, "max_cells": {[]string{"1_000"}, 8}}
-	if err != nil || !maps.EqualFunc(got, want, func(a, b configValue) bool { return a.line == b.line && slices.Equal(a.texts, b.texts) }) {
-		t.Errorf("%v, %v", got, err)
-	}
-	for _, text := range []string{"", "# nothing\n", "---\n"} {
-		if got, err := parseConfig("s.yaml", []byte(text), keys); err != nil || len(got) != 0 {
-			t.Errorf("%q: %v, %v", text, got, err)
-		}
-	}
-	for _, c := range []struct{ text, where, what string }{
-		{"listen: a\nlisten: b\n", "s.yaml:2", "already"},
-		{"listen: a\nlisen: b\n", "s.yaml:2", `no setting "lisen"`},
-		{"listen:\n", "s.yaml:1", "plain value"},
-		{"listen: {a: b}\n", "s.yaml:1", "plain value"},
-		{"map:\n  - a\n  - {b: c}\n", "s.yaml:3", "plain value"},
-		{"map:\n  - [a]\n", "s.yaml:2", "plain value"},
-		{"listen: &x a\nmap: *x\n", "s.yaml:1", "plain value"},
-		{"listen: !!str a\n", "s.yaml:1", "plain value"},
-		{"- listen\n", "s.yaml:1", "KEY: VALUE"},
-		{"listen\n", "s.yaml:1", "KEY: VALUE"},
-		{"listen: a\n---\nlisten: b\n", "s.yaml", "second document"},
-		{"listen: [a\n", "s.yaml:1", ""},
-		{"listen: a\n\tmap: b\n", "s.yaml:2", "no text"},
-		{"listen: \xff\n", "s.yaml:1", "no text"},
-		{strings.Repeat("#", maxConfigBytes+1), "s.yaml", "settings need less"},
-	} {
-		_, err := parseConfig("s.yaml", []byte(c.text), keys)
-		if err == nil || !strings.HasPrefix(err.Error(), c.where+":") || !strings.Contains(err.Error(), c.what) {
-			t.Errorf("%.40q: %v, want %s: … %s", c.text, err, c.where, c.what)
-		}
-	}
-}
-
-// FuzzParseConfig: no file panics; what is taken has known keys and lines
-// of the file.
-func FuzzParseConfig(f *testing.F) {
-	f.Fuzz(func(t *testing.T, text []byte) {
-		if len(text) > 1<<14 {
-			return
-		}
-		keys := []string{"listen", "map"}
-		got, err := parseConfig("s.yaml", text, keys)
-		if err != nil {
-			if !strings.HasPrefix(err.Error(), "s.yaml:") {
-				t.Errorf("%v", err)
-			}
-			return
-		}
-		for k, v := range got {
-			if !slices.Contains(keys, k) || v.line < 1 || v.line > 1+strings.Count(string(text), "\n") {
-				t.Errorf("%s: %+v", k, v)
-			}
-		}
-	})
-}
-
 // TestServersAddress: every command that asks a server takes its address from
 // the settings.
 func TestServersAddress(t *testing.T) {
@@ -201,7 +142,7 @@ func TestReadmeSettings(t *testing.T) {
 	}
 	_, example, found := strings.Cut(page, "\n```yml\n")
 	example, _, _ = strings.Cut(example, "```")
-	if values, err := parseConfig("README.md", []byte(example), optionKeys(newRoot())); !found || err != nil || len(values) < 3 {
+	if values, err := settings.Parse("README.md", []byte(example), optionKeys(newRoot())); !found || err != nil || len(values) < 3 {
 		t.Errorf("README.md's file of settings: %v, %v", values, err)
 	}
 }

@@ -1,29 +1,15 @@
 package main
 
 import (
-	"errors"
 	"fmt"
 	"io"
 	"os"
-	"slices"
-	"strings"
 
-	"github.com/goccy/go-yaml"
-	"github.com/goccy/go-yaml/ast"
-	"github.com/goccy/go-yaml/parser"
+	"leadline/cmd/leadline/settings"
 )
 
-// maxConfigBytes bounds a file of settings: hundreds of maps by long paths.
-const maxConfigBytes = 256 << 10
-
-// configValue is what a file says of a setting: one text, or a list of them.
-type configValue struct {
-	texts []string
-	line  int
-}
-
 // readConfig reads a file of settings.
-func readConfig(path string, keys []string) (map[string]configValue, error) {
+func readConfig(path string, keys []string) (map[string]settings.Value, error) {
 	if err := exists(path); err != nil {
 		return nil, fmt.Errorf("settings: %w", err)
 	}
@@ -32,97 +18,9 @@ func readConfig(path string, keys []string) (map[string]configValue, error) {
 		return nil, fmt.Errorf("settings: %w", err)
 	}
 	defer f.Close()
-	text, err := io.ReadAll(io.LimitReader(f, maxConfigBytes+1))
+	text, err := io.ReadAll(io.LimitReader(f, settings.MaxBytes+1))
 	if err != nil {
 		return nil, fmt.Errorf("settings: %w", err)
 	}
-	return parseConfig(path, text, keys)
-}
-
-// parseConfig takes YAML that is one mapping from keys to plain values or
-// lists of them, and nothing else: no unknown or doubled key, no anchor, tag or
-// second document. The error has the line.
-func parseConfig(name string, text []byte, keys []string) (values map[string]configValue, err error) {
-	fail := func(line int, format string, args ...any) error {
-		return fmt.Errorf("%s:%d: %s", name, line, fmt.Sprintf(format, args...))
-	}
-	if len(text) > maxConfigBytes {
-		return nil, fmt.Errorf("%s: the file has over %d bytes: settings need less", name, maxConfigBytes)
-	}
-	for i, r := range string(text) {
-		if r == '\ufffd' || r < ' ' && r != '\n' && r != '\r' || r == 0x7f {
-			return nil, fail(1+strings.Count(string(text[:i]), "\n"), "a byte is no text: settings are plain UTF-8, indented by spaces")
-		}
-	}
-	// The library is not ours: a defect of it must not end the program.
-	defer func() {
-		if r := recover(); r != nil {
-			values, err = nil, fmt.Errorf("%s: cannot be read as YAML (%v)", name, r)
-		}
-	}()
-	file, err := parser.ParseBytes(text, 0)
-	if err != nil {
-		var y yaml.Error
-		if errors.As(err, &y) && y.GetToken() != nil {
-			return nil, fail(y.GetToken().Position.Line, "%s", y.GetMessage())
-		}
-		return nil, fmt.Errorf("%s: %s", name, oneLine(err.Error()))
-	}
-	if len(file.Docs) > 1 {
-		return nil, fmt.Errorf("%s: a second document begins: settings are one document", name)
-	}
-	values = map[string]configValue{}
-	if len(file.Docs) == 0 || file.Docs[0].Body == nil {
-		return values, nil
-	}
-	var pairs []*ast.MappingValueNode
-	switch body := file.Docs[0].Body.(type) {
-	case *ast.MappingNode:
-		pairs = body.Values
-	case *ast.MappingValueNode:
-		pairs = []*ast.MappingValueNode{body}
-	case *ast.CommentGroupNode:
-		return values, nil
-	default:
-		return nil, fail(line(body), "settings are lines of KEY: VALUE")
-	}
-	for _, p := range pairs {
-		key, at := p.Key.GetToken().Value, line(p.Key)
-		if !slices.Contains(keys, key) {
-			return nil, fail(at, "there is no setting %.80q: known are %s", key, strings.Join(keys, ", "))
-		}
-		if _, ok := values[key]; ok {
-			return nil, fail(at, "%s is there twice", key)
-		}
-		v := configValue{line: at}
-		nodes := []ast.Node{p.Value}
-		if l, ok := p.Value.(*ast.SequenceNode); ok {
-			nodes = l.Values
-		}
-		for _, n := range nodes {
-			text, ok := plain(n)
-			if !ok {
-				return nil, fail(line(n), "%s: give a plain value, or a list of plain values", key)
-			}
-			v.texts = append(v.texts, text)
-		}
-		values[key] = v
-	}
-	return values, nil
-}
-
-// plain is the text of a number, a word or a quoted text.
-func plain(n ast.Node) (string, bool) {
-	switch n.(type) {
-	case *ast.StringNode, *ast.IntegerNode, *ast.FloatNode, *ast.BoolNode:
-		return n.GetToken().Value, true
-	}
-	return "", false
-}
-
-func line(n ast.Node) int {
-	if n == nil || n.GetToken() == nil {
-		return 1
-	}
-	return n.GetToken().Position.Line
+	return settings.Parse(path, text, keys)
 }

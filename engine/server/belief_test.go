@@ -98,6 +98,9 @@ func wantMasses[K comparable](t *testing.T, what string, m *leadlinev1.Belief, c
 // TestBeliefOnAPlane proves that a reader gets a session's masses back, each
 // within a quantum and at its place, with quantities and without.
 func TestBeliefOnAPlane(t *testing.T) {
+	if testing.Short() {
+		t.Skip("one caller at a time: not with -short")
+	}
 	for what, suite := range map[string]*sensor.Suite{
 		"lattice": nil,
 		"Gaussians": {Sensors: []sensor.Sensor{

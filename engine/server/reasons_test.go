@@ -333,6 +333,9 @@ func wrongCalls(t *testing.T) []wrongCall {
 // it: with the code that reason.proto names, what it is about, and one line
 // that says what was wrong.
 func TestReasons(t *testing.T) {
+	if testing.Short() {
+		t.Skip("one caller at a time: not with -short")
+	}
 	seen := map[leadlinev1.Reason]bool{}
 	for i, c := range wrongCalls(t) {
 		name := strings.ToLower(strings.TrimPrefix(c.reason.String(), "REASON_"))

@@ -19,6 +19,9 @@ var _ Asker = (*session.Session)(nil)
 // another: a region holds what it says, by Inside; the protection radius at
 // 1 % is the 99 % radius; and the suite's risk gives the posterior's own.
 func TestQuestionsOfASession(t *testing.T) {
+	if testing.Short() {
+		t.Skip("one caller at a time: not with -short")
+	}
 	_, conn := serve(t, Config{})
 	closed, err := fed(limited(t), conn, client.Drive{Header: header("v")}, voyage(12, 5))
 	if err != nil {
