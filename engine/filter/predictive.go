@@ -249,8 +249,14 @@ func (t tails) between(u tails) float64 {
 	return u.below - t.below
 }
 
+// normalTails is to 1.1e-6 of the smaller one, which changes a score by less.
 func normalTails(z float64) tails {
-	tail := kernel.NormalUpper(math.Abs(z))
+	var tail float64
+	if a := math.Abs(z); a < kernel.QuickEnd {
+		tail = kernel.QuickUpper(a)
+	} else {
+		tail = kernel.NormalUpper(a)
+	}
 	if z < 0 {
 		return tails{tail, 1 - tail}
 	}

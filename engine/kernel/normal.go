@@ -18,7 +18,7 @@ func NormalDensity(x float64) float64 { return InvSqrt2Pi * Exp(-0.5*float64(x*x
 //
 // Source: for |x| < 3 the series of Abramowitz & Stegun 26.2.11 (all terms of
 // one sign), beyond it the continued fraction 26.2.14, evaluated backwards
-// from a depth that reaches 1e-15 at x = 3.
+// from a depth at which one more changes nothing (48 at 3, 11 at 10).
 func NormalUpper(x float64) float64 {
 	switch {
 	case x != x:
@@ -36,7 +36,7 @@ func NormalUpper(x float64) float64 {
 		return 0.5 - float64(NormalDensity(x)*sum)
 	}
 	f := x
-	for n := 60.0; n >= 1; n-- {
+	for n := math.Ceil(11 + 350/float64(x*x)); n >= 1; n-- {
 		f = x + n/f
 	}
 	return NormalDensity(x) / f

@@ -4,6 +4,7 @@ import (
 	"math"
 
 	"leadline/engine/geo"
+	"leadline/engine/kernel"
 )
 
 // To find how much of a Gaussian lies outside a circle, it is taken apart once
@@ -69,8 +70,8 @@ const (
 )
 
 // hairM2 over the mean square distance from the centre is the minor variance
-// below which one needle does: five of its sigmas then change a radius, which
-// is about that distance, by 1 %.
+// below which one needle does, or two where it is not much narrower than long:
+// five of its sigmas then change a radius, which is about that distance, by 1 %.
 const hairM2 = 0.002 * 0.002
 
 // dotM2 over the mean square distance is the major variance below which one disc
@@ -96,12 +97,14 @@ func (s *Summarizer) take(mass float64, p geo.Point, c Cov, meanSquare float64) 
 	v := float64(p.E*axis.E) + float64(p.N*axis.N)
 	w := float64(p.N*axis.E) - float64(p.E*axis.N)
 	s1, s2 := math.Sqrt(l1), math.Sqrt(l2)
-	if s2 < asNeedles*s1 {
+	if s2 < asNeedles*s1 || l2 < hairM2*meanSquare {
 		rule := hermite9
 		kappa := math.Abs(w) * s2 / l1
 		switch {
 		case l2 < hairM2*meanSquare:
-			rule = hermite1
+			if rule = hermite1; s2 >= asNeedles*s1 {
+				rule = hermite2
+			}
 		case s2 < 0.125*s1 && kappa < 0.5:
 			rule = hermite2
 		case s2 < 0.25*s1 && kappa < 1.5:
@@ -122,7 +125,7 @@ func (s *Summarizer) take(mass float64, p geo.Point, c Cov, meanSquare float64) 
 	sum := 0.0
 	first := len(s.discs)
 	for i := -k; i <= k; i++ {
-		_, f := s.tables.upper(float64(i) * h)
+		_, f := kernel.QuickTail(float64(i) * h)
 		at := v + float64(float64(i)*h*tau)
 		d := math.Sqrt(float64(at*at) + float64(w*w))
 		s.discs = append(s.discs, disc{f, d, 1 / s2, tailEnd * s2})
@@ -169,9 +172,9 @@ func (s *Summarizer) outside(r float64) float64 {
 		if near >= tailEnd {
 			continue
 		}
-		p := t.upperQ(near)
+		p := kernel.QuickUpper(near)
 		if far := (c + a.v) * a.is; far < tailEnd {
-			p += t.upperQ(far)
+			p += kernel.QuickUpper(far)
 		}
 		sum += float64(a.mass * math.Min(needleExcess*p, 1))
 	}

@@ -7,15 +7,14 @@ import (
 
 // hills is a density on the nodes of a square grid, and its division into peaks
 // and what belongs to them. The grid is a plain array if that is not much larger
-// than the belief, else its nodes are hashed; the nodes' order differs, what
+// than the belief, else its nodes come in blocks; the nodes' order differs, what
 // comes out does not but for ties.
 type hills struct {
 	side float64
-	// The plain array: its first column and row, and its width; 0 if hashed.
+	// The plain array: its first column and row, and its width; 0 if in blocks.
 	col0, row0, width int32
+	blocks            blocks
 
-	slot  []slot // open addressing; a power of two long
-	key   []uint64
 	mass  []float64
 	high  []float64 // smoothed
 	order []uint64  // packed by byHeight
@@ -23,16 +22,6 @@ type hills struct {
 	visit []int32 // when divide came to a node
 	peak  []int32 // union-find parent by node, -1 while not yet visited
 	near  []int32 // by entry: the nearest node
-	// next are the nodes around each hashed one, looked up in the order in
-	// which they were made, that is in places side by side.
-	next [][8]int32
-}
-
-// slot holds a node of the hashed grid, by its key; node is one more than its
-// number, 0 in a free slot.
-type slot struct {
-	key  uint64
-	node int32
 }
 
 // packHeight makes numbers that ascend as heights fall and then as nodes rise.
@@ -132,19 +121,18 @@ func (h *hills) smooth() {
 		if m == 0 {
 			continue
 		}
-		col, row := int32(h.key[i]>>32), int32(uint32(h.key[i]))
 		for dy := int32(-1); dy <= 1; dy++ {
 			for dx := int32(-1); dx <= 1; dx++ {
-				j := int32(i)
-				if dx != 0 || dy != 0 {
-					j = h.node(nodeKey(col+dx, row+dy))
-				}
-				if int(j) == len(h.high) {
-					h.high = append(h.high, 0)
+				j := h.blocks.beside(int32(i), dx, dy, true)
+				for len(h.high) < h.blocks.nodes() {
+					h.high = append(h.high, noNodes[:]...)
 				}
 				h.high[j] += float64(float64((2-dx*dx)*(2-dy*dy)) / 16 * m)
 			}
 		}
+	}
+	for len(h.mass) < len(h.high) {
+		h.mass = append(h.mass, noNodes[:]...)
 	}
 }
 
@@ -164,9 +152,6 @@ func (h *hills) divide(prominence float64) {
 	}
 	h.spare = resize(h.spare, len(h.order))
 	sortPacked(h.order, h.spare)
-	if h.width == 0 {
-		h.link()
-	}
 	for rank, packed := range h.order {
 		at := int32(uint32(packed))
 		h.visit[at] = int32(rank)

@@ -113,11 +113,11 @@ func (s *Summarizer) paint(pixel float64) bool {
 				x := float64(col) - e
 				q := float64(pee*float64(x*x)) + float64(2*pen*float64(x*y)) + float64(pnn*float64(y*y))
 				if q < paintSigmas*paintSigmas {
-					h.mass[h.node(nodeKey(col, row))] += float64(m * kernel.Exp(-0.5*q))
+					h.mass[h.place(col, row)] += float64(m * kernel.Exp(-0.5*q))
 				}
 			}
 		}
-		if len(h.key) > maxPixels {
+		if len(h.mass) > maxPixels {
 			return false
 		}
 	}
@@ -131,11 +131,14 @@ func (r *raster) pick(target float64) (holds float64, n int) {
 	r.order, r.spare = resize(r.order, len(h.mass))[:0], resize(r.spare, len(h.mass))
 	total := 0.0
 	for i, m := range h.mass {
+		if m == 0 {
+			continue
+		}
 		total += m
 		r.order = append(r.order, packHeight(m, i))
 	}
-	sortPacked(r.order, r.spare)
-	r.chosen = resize(r.chosen, len(h.key))
+	sortPacked(r.order, r.spare[:len(r.order)])
+	r.chosen = resize(r.chosen, len(h.mass))
 	clear(r.chosen)
 	for _, o := range r.order {
 		if holds >= target*total {
@@ -154,7 +157,7 @@ type corner struct{ col, row int32 }
 
 // has reports a chosen pixel.
 func (r *raster) has(col, row int32) bool {
-	n := r.hills.find(nodeKey(col, row))
+	n := r.hills.blocks.has(col, row)
 	return n >= 0 && r.chosen[n]
 }
 
@@ -178,8 +181,8 @@ func (r *raster) trace(n int) [][]corner {
 	seen := make(map[start]bool, 4*n) // looked up only, never ranged over
 	var rings [][]corner
 	for _, o := range r.order[:n] {
-		key := r.hills.key[uint32(o)]
-		pixel := corner{int32(key >> 32), int32(uint32(key))}
+		col, row := r.hills.blocks.place(int32(uint32(o)))
+		pixel := corner{col, row}
 		// The edges of a pixel: each has it on the left.
 		for way, c := range [4]corner{
 			pixel, {pixel.col + 1, pixel.row}, {pixel.col + 1, pixel.row + 1}, {pixel.col, pixel.row + 1},

@@ -7,83 +7,28 @@ import (
 	"leadline/engine/kernel"
 )
 
-// The radii of a posterior need the normal distribution's tail some ten
-// thousand times. A table of it, interpolated by cubics, costs a few
-// nanoseconds.
 const (
-	// tailEnd is where the tables end: beyond, Q < 1.2e-19, far below a
-	// thousandth of the least risk allowed, 1e-12.
-	tailEnd   = 9
-	tailSteps = 64 // per unit
-	i0Steps   = 64 // per unit
-	i0End     = 16
+	// tailEnd is where tails end: beyond, Q < 1.2e-19, far below a thousandth of
+	// the least risk allowed, 1e-12.
+	tailEnd = kernel.QuickEnd
+	i0Steps = 64 // per unit
+	i0End   = 16
 )
 
-// tailTables are values of Q and of the density at multiples of 1/64. The
-// cubic through values and slopes is off by h⁴/384·|f⁗|: below 1.1e-6 of Q
-// and 1.2e-6 of the density up to 9.
+// tailTables are I₀(x)·e^-x at multiples of 1/64; between them the chord, which
+// lies above since I₀(x)·e^-x is convex, by at most h²/8·1.5 = 5e-5.
 type tailTables struct {
-	at [2*tailEnd*tailSteps + 2]struct{ q, f float64 }
-	// i0e is I₀(x)·e^-x at multiples of 1/64; between them the chord, which
-	// lies above since I₀(x)·e^-x is convex, by at most h²/8·1.5 = 5e-5.
 	i0e [i0End*i0Steps + 2]float64
 }
 
 var tables = sync.OnceValue(func() *tailTables {
 	t := new(tailTables)
-	for i := range t.at {
-		x := float64(i)/tailSteps - tailEnd
-		t.at[i].q, t.at[i].f = kernel.NormalUpper(x), kernel.NormalDensity(x)
-	}
 	for i := range t.i0e {
 		x := float64(i) / i0Steps
 		t.i0e[i] = kernel.Exp(kernel.LogI0(x) - x)
 	}
 	return t
 })
-
-// upper returns Q(x) = P(Z > x) and the density at x; 1 and 0 below -9, 0 and
-// 0 above 9. x is not NaN.
-func (t *tailTables) upper(x float64) (q, f float64) {
-	y := float64(x*tailSteps) + tailEnd*tailSteps
-	if !(y > 0) {
-		return 1, 0
-	}
-	if y >= 2*tailEnd*tailSteps {
-		return 0, 0
-	}
-	i := int(y)
-	u := y - float64(i)
-	a, b := &t.at[i], &t.at[i+1]
-	const h = 1.0 / tailSteps
-	xa := float64(i)*h - tailEnd
-	// Cubic Hermite basis; slopes of Q are -f, those of f are -x·f.
-	w := float64(u*u) * (3 - float64(2*u))
-	ga := u * float64((1-u)*(1-u)) * h
-	gb := float64(u*u) * (u - 1) * h
-	q = a.q + float64(w*(b.q-a.q)) - float64(ga*a.f) - float64(gb*b.f)
-	f = a.f + float64(w*(b.f-a.f)) - float64(ga*float64(xa*a.f)) - float64(gb*float64((xa+h)*b.f))
-	return q, f
-}
-
-// upperQ is upper without the density.
-func (t *tailTables) upperQ(x float64) float64 {
-	y := float64(x*tailSteps) + tailEnd*tailSteps
-	if !(y > 0) {
-		return 1
-	}
-	if y >= 2*tailEnd*tailSteps {
-		return 0
-	}
-	i := int(y)
-	u := y - float64(i)
-	a, b := &t.at[i], &t.at[i+1]
-	const h = 1.0 / tailSteps
-	w := float64(u*u) * (3 - float64(2*u))
-	ga := u * float64((1-u)*(1-u)) * h
-	gb := float64(u*u) * (u - 1) * h
-	return a.q + float64(w*(b.q-a.q)) - float64(ga*a.f) - float64(gb*b.f)
-}
 
 // bessel returns I₀(x)·e^-x for x ≥ 0, not below it by more than 1e-6 of it.
 // Source beyond 16: Abramowitz & Stegun 9.7.1, first term left out 0.23/x⁵.
@@ -119,7 +64,7 @@ func (t *tailTables) circleTail(alpha, beta float64) float64 {
 	if y <= -tailEnd {
 		return 1
 	}
-	q, f := t.upper(y)
+	q, f := kernel.QuickTail(y)
 	m0, m1, m2 := moments(alpha, q, f, y)
 	if alpha == 0 || y >= 0 && beta >= 1.6 {
 		if m0 == 0 {
@@ -127,7 +72,7 @@ func (t *tailTables) circleTail(alpha, beta float64) float64 {
 		}
 		return math.Min(t.weigh(alpha, m0, m1, m2)*(circleExcess/kernel.InvSqrt2Pi), 1)
 	}
-	q, f = t.upper(-alpha)
+	q, f = kernel.QuickTail(-alpha)
 	n0, n1, n2 := moments(alpha, q, f, -alpha)
 	if n0 -= m0; !(n0 > 1e-9) {
 		return 1 // the complement is below sqrt(2π)·1e-9
