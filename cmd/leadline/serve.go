@@ -30,7 +30,8 @@ type serveOptions struct {
 	listen       string
 	accessOptions
 	operateOptions
-	maxCells, vehicles  int
+	vehicles int
+	limitOptions
 	drainTimeout        time.Duration
 	logFormat, logLevel choice
 	printConfig         bool
@@ -66,27 +67,14 @@ Without either a server that stops forgets its vehicles.`,
 	o.operateOptions.flags(c)
 	f.StringArrayVar(&o.origins, "origin", nil, "origin whose pages may call from a browser, such as https://map.example; repeat for several")
 	f.IntVar(&o.vehicles, "max-vehicles", defaultVehicles, "greatest number of vehicles at once")
-	f.IntVar(&o.maxCells, "max-cells", defaultCells, "greatest number of cells of a belief")
+	o.limitOptions.flags(c)
 	f.DurationVar(&o.drainTimeout, "drain-timeout", 10*time.Second, "how long to wait for streams when stopping")
 	f.Var(&o.logFormat, "log-format", "form of the log: text or json")
 	f.Var(&o.logLevel, "log-level", "least level of what is logged: debug, info, warn or error")
 	o.keep.flags(c)
 	f.BoolVar(&o.printConfig, "print-config", false, "print the settings that count and where each came from, and end")
-	settable(c, "map", "suite", "uploads", "listen", "origin", "max-vehicles", "max-cells", "drain-timeout", "log-format", "log-level")
+	settable(c, "map", "suite", "uploads", "listen", "origin", "max-vehicles", "drain-timeout", "log-format", "log-level")
 	return c
-}
-
-// checkBounds wants numbers of at least one.
-func (o *serveOptions) checkBounds() error {
-	for _, b := range []struct {
-		flag string
-		v    int
-	}{{"max-vehicles", o.vehicles}, {"max-cells", o.maxCells}} {
-		if b.v < 1 {
-			return fmt.Errorf("--%s is %d: give a whole number, 1 or more", b.flag, b.v)
-		}
-	}
-	return nil
 }
 
 func serve(c *cobra.Command, o *serveOptions) error {
@@ -96,7 +84,7 @@ func serve(c *cobra.Command, o *serveOptions) error {
 	if len(o.maps) == 0 && o.uploads == "" {
 		return errors.New("no map to serve: give --map NAME=FILE, LEADLINE_MAP, or map in the file of settings; see `leadline serve --help`")
 	}
-	if err := errors.Join(o.checkBounds(), o.check()); err != nil {
+	if err := errors.Join(o.checkBounds(o.vehicles), o.check()); err != nil {
 		return err
 	}
 	log := logger(c.ErrOrStderr(), o.logFormat.word, o.logLevel.word)
@@ -126,7 +114,7 @@ func (o *serveOptions) config() (cfg *server.Config, closeMaps func(), err error
 			m.Close()
 		}
 	}
-	cfg = &server.Config{Origins: o.origins, Page: page.Handler(), MaxCells: o.maxCells, Suites: map[string]*sensor.Suite{}, Limits: server.Limits{Vehicles: o.vehicles}}
+	cfg = &server.Config{Origins: o.origins, Page: page.Handler(), MaxCells: o.maxCells, Suites: map[string]*sensor.Suite{}, Limits: o.limits(o.vehicles)}
 	for _, arg := range o.maps {
 		name, path := named(arg, mapName)
 		m, err := openMap(path)
@@ -141,6 +129,7 @@ func (o *serveOptions) config() (cfg *server.Config, closeMaps func(), err error
 	}
 	if o.uploads != "" {
 		cfg.Uploads = uploadsTo(o.uploads)
+		cfg.Uploads.MaxBytes = int64(o.mapMiB) << 20
 	}
 	for _, name := range sensor.StarterNames() {
 		if cfg.Suites[name], err = openSuite(name); err != nil {

@@ -39,10 +39,12 @@ type Carrier struct {
 
 // Waits between tries double from shortestWait to longestWait; each is between
 // half of that and all of it, by chance, so that vehicles that lost one server
-// do not come back all at once.
+// do not come back all at once. A server that says when to come back is heeded,
+// up to longestHint.
 const (
 	shortestWait = 100 * time.Millisecond
 	longestWait  = 10 * time.Second
+	longestHint  = time.Minute
 )
 
 // maxCarried bounds a batch in bytes, so that each fits into a message of any
@@ -209,7 +211,11 @@ func (c *Carrier) lose(err error) error {
 		return err
 	}
 	c.wait = min(max(2*c.wait, shortestWait), longestWait)
-	late := time.NewTimer(c.wait/2 + mathrand.N(c.wait/2))
+	wait := c.wait/2 + mathrand.N(c.wait/2)
+	if hint := min(RetryAfter(err), longestHint); hint > wait {
+		wait = hint + mathrand.N(hint/4+1)
+	}
+	late := time.NewTimer(wait)
 	defer late.Stop()
 	select {
 	case <-late.C:

@@ -2,6 +2,7 @@ package client
 
 import (
 	"errors"
+	"time"
 
 	"google.golang.org/genproto/googleapis/rpc/errdetails"
 	"google.golang.org/grpc/status"
@@ -39,4 +40,19 @@ func WhyOf(err error) (Why, bool) {
 		return Why{leadlinev1.Reason(leadlinev1.Reason_value["REASON_"+info.GetReason()]), st.Message(), info.GetMetadata()}, true
 	}
 	return Why{}, false
+}
+
+// RetryAfter returns after how long a call may do that a server has refused for
+// what passes; 0 where it does not say.
+func RetryAfter(err error) time.Duration {
+	var of interface{ GRPCStatus() *status.Status }
+	if !errors.As(err, &of) {
+		return 0
+	}
+	for _, d := range of.GRPCStatus().Details() {
+		if info, ok := d.(*errdetails.RetryInfo); ok {
+			return max(info.GetRetryDelay().AsDuration(), 0)
+		}
+	}
+	return 0
 }

@@ -4,10 +4,12 @@ import (
 	"errors"
 	"fmt"
 	"testing"
+	"time"
 
 	"google.golang.org/genproto/googleapis/rpc/errdetails"
 	"google.golang.org/grpc/codes"
 	"google.golang.org/grpc/status"
+	"google.golang.org/protobuf/types/known/durationpb"
 	"google.golang.org/protobuf/types/known/timestamppb"
 
 	leadlinev1 "leadline/proto/leadline/v1"
@@ -42,6 +44,43 @@ func TestWhy(t *testing.T) {
 		if why, ok := WhyOf(e); ok {
 			t.Errorf("%v: %+v", e, why)
 		}
+	}
+}
+
+// TestRetryAfter proves that a server's word when to come back is read and
+// heeded: a drive that is refused with it opens again, and not before.
+func TestRetryAfter(t *testing.T) {
+	const hint = 700 * time.Millisecond // above the first waits of a carrier
+	st, err := status.New(codes.ResourceExhausted, "full").WithDetails(&errdetails.RetryInfo{RetryDelay: durationpb.New(hint)})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if got := RetryAfter(fmt.Errorf("the drive: %w", st.Err())); got != hint {
+		t.Errorf("the hint is read as %v", got)
+	}
+	for _, e := range []error{nil, errors.New("no call"), status.Error(codes.Unavailable, "nobody")} {
+		if got := RetryAfter(e); got != 0 {
+			t.Errorf("%v: %v", e, got)
+		}
+	}
+	var came []time.Time
+	conn := against(t, func(s serverStream) error {
+		if came = append(came, time.Now()); len(came) == 1 {
+			return st.Err()
+		}
+		if err := s.Send(opened(0, 10, 1000)); err != nil {
+			return err
+		}
+		_, err := s.Recv()
+		return err
+	})
+	c, err := Carry(limited(t), conn, Drive{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	c.Abort()
+	if len(came) != 2 || came[1].Sub(came[0]) < hint {
+		t.Errorf("the drive is opened at %v", came)
 	}
 }
 

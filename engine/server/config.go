@@ -138,6 +138,19 @@ type Limits struct {
 	// BatchMeasurements is the number of measurements in a batch. Default
 	// 1024.
 	BatchMeasurements int
+	// Rate and RateInAll are the measurements a second of one vehicle and of all
+	// together. Streams that bring more are read no faster; ten seconds of it
+	// may come at once. Defaults 10 000 and 500 000.
+	Rate, RateInAll int
+	// CellsInAll is the number of cells or Gaussians of all beliefs together from
+	// which on no new drive is taken. Default 10 000 000.
+	CellsInAll int
+	// Load is the number of drives at work or waiting for a processor, for each
+	// processor, from which on fewer posteriors are told; from refuseAt times that
+	// on no new drive is taken. Default 4.
+	Load int
+	// LoadOver is over how long the load is averaged. Default 5 s.
+	LoadOver time.Duration
 	// QueueBatches is the number of batches that wait at one session; the
 	// stream stops reading beyond. Default 4.
 	QueueBatches int
@@ -167,6 +180,10 @@ func (l *Limits) fields() []limit {
 		{"Openings", &l.Openings, 2},
 		{"MessageBytes", &l.MessageBytes, 4 << 20},
 		{"BatchMeasurements", &l.BatchMeasurements, 1024},
+		{"Rate", &l.Rate, 10_000},
+		{"RateInAll", &l.RateInAll, 500_000},
+		{"CellsInAll", &l.CellsInAll, 10_000_000},
+		{"Load", &l.Load, 4},
 		{"QueueBatches", &l.QueueBatches, 4},
 		{"Regions", &l.Regions, 8},
 		{"Followers", &l.Followers, 100},
@@ -196,6 +213,9 @@ func (l Limits) withDefaults() Limits {
 	}
 	if l.OpenTimeout == 0 {
 		l.OpenTimeout = 10 * time.Second
+	}
+	if l.LoadOver == 0 {
+		l.LoadOver = 5 * time.Second
 	}
 	return l
 }
@@ -229,7 +249,7 @@ func (c *Config) Validate() error {
 			errs = append(errs, fmt.Errorf("server: limit %s is %d: it must be positive, or 0 for %d", f.name, *f.v, f.or))
 		}
 	}
-	if c.Limits.IdleTimeout < 0 || c.Limits.OpenTimeout < 0 || c.Limits.ResumeTimeout < 0 {
+	if c.Limits.IdleTimeout < 0 || c.Limits.OpenTimeout < 0 || c.Limits.ResumeTimeout < 0 || c.Limits.LoadOver < 0 {
 		errs = append(errs, errors.New("server: a timeout is negative"))
 	}
 	return errors.Join(errs...)

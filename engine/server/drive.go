@@ -43,6 +43,7 @@ func (o *owner) takeBatch(b *leadlinev1.Batch) {
 		o.hangup(o.tooLate(b))
 		return
 	}
+	defer o.srv.load.work()()
 	r := &leadlinev1.Receipt{Sequence: b.GetSequence()}
 	var n news
 	for i, m := range b.GetMeasurements() {
@@ -138,7 +139,7 @@ func (o *owner) publish(n *news, ps []*summary.Posterior) {
 	if o.at == nil || o.at.reply == leadlinev1.Reply_REPLY_NONE {
 		return
 	}
-	if o.at.reply == leadlinev1.Reply_REPLY_EVERY {
+	if o.at.reply == leadlinev1.Reply_REPLY_EVERY && !o.srv.load.thins() {
 		for _, p := range ps {
 			o.sayPosterior(p)
 		}
@@ -146,6 +147,9 @@ func (o *owner) publish(n *news, ps []*summary.Posterior) {
 		return
 	}
 	for _, p := range ps {
+		if n.last != nil && o.at.reply == leadlinev1.Reply_REPLY_EVERY {
+			o.srv.cfg.Metrics.Thinned()
+		}
 		n.last = p
 		n.withdrawn = slices.DeleteFunc(n.withdrawn, func(t sensor.Time) bool { return int64(t) == p.TimeNS })
 	}

@@ -6,10 +6,13 @@ import (
 	"slices"
 	"strconv"
 	"strings"
+	"time"
 
 	"google.golang.org/genproto/googleapis/rpc/errdetails"
 	"google.golang.org/grpc/codes"
 	"google.golang.org/grpc/status"
+	"google.golang.org/protobuf/protoadapt"
+	"google.golang.org/protobuf/types/known/durationpb"
 
 	"leadline/engine/session"
 	leadlinev1 "leadline/proto/leadline/v1"
@@ -49,9 +52,20 @@ var reasonCodes = map[leadlinev1.Reason]codes.Code{
 	leadlinev1.Reason_REASON_IDENTITY_EXPIRED:   codes.Unauthenticated,
 	leadlinev1.Reason_REASON_IDENTITY_UNCHECKED: codes.Unavailable,
 	leadlinev1.Reason_REASON_NOT_ALLOWED:        codes.PermissionDenied,
+	leadlinev1.Reason_REASON_TOO_FAST:           codes.ResourceExhausted,
 	leadlinev1.Reason_REASON_JOURNAL_FULL:       codes.ResourceExhausted,
 	leadlinev1.Reason_REASON_JOURNAL_DOWN:       codes.Unavailable,
 	leadlinev1.Reason_REASON_JOURNAL_DAMAGED:    codes.DataLoss,
+}
+
+// retryAfter is after how long a call may do that was refused for what passes: a
+// hint that goes with the refusal, in a google.rpc.RetryInfo.
+var retryAfter = map[leadlinev1.Reason]time.Duration{
+	leadlinev1.Reason_REASON_SERVER_FULL:        5 * time.Second,
+	leadlinev1.Reason_REASON_JOURNAL_FULL:       5 * time.Second,
+	leadlinev1.Reason_REASON_JOURNAL_DOWN:       time.Second,
+	leadlinev1.Reason_REASON_STOPPING:           time.Second,
+	leadlinev1.Reason_REASON_IDENTITY_UNCHECKED: 5 * time.Second,
 }
 
 // about says what a failure is about, for programs: vehicle, drive, map, suite,
@@ -62,6 +76,12 @@ type about map[string]string
 // with comes from here; only those of gRPC do not (a message that is too large
 // or no message, a call that the client gave up).
 func refuse(reason leadlinev1.Reason, on about, format string, args ...any) error {
+	return refuseFor(reason, retryAfter[reason], on, format, args...)
+}
+
+// refuseFor is refuse for what may do after a while; 0 is that trying again does
+// not help.
+func refuseFor(reason leadlinev1.Reason, wait time.Duration, on about, format string, args ...any) error {
 	code, ok := reasonCodes[reason]
 	if !ok {
 		panic(fmt.Sprintf("server: %v is no reason of a call", reason))
@@ -72,7 +92,11 @@ func refuse(reason leadlinev1.Reason, on about, format string, args ...any) erro
 	for k, v := range on {
 		info.Metadata[k] = clip(v)
 	}
-	st, err := status.New(code, clip(fmt.Sprintf(format, args...))).WithDetails(info)
+	details := []protoadapt.MessageV1{info}
+	if wait > 0 {
+		details = append(details, &errdetails.RetryInfo{RetryDelay: durationpb.New(wait)})
+	}
+	st, err := status.New(code, clip(fmt.Sprintf(format, args...))).WithDetails(details...)
 	if err != nil {
 		panic("server: " + err.Error()) // the code is none of success
 	}
@@ -86,7 +110,13 @@ func badField(path, format string, args ...any) error {
 
 // full is the refusal of what would exceed a limit of the server.
 func full(limit string, most int, format string, args ...any) error {
-	return refuse(leadlinev1.Reason_REASON_SERVER_FULL, about{"limit": limit, "most": strconv.Itoa(most)}, format, args...)
+	return refuse(leadlinev1.Reason_REASON_SERVER_FULL, ofLimit(about{}, limit, most), format, args...)
+}
+
+// ofLimit adds to what a failure is about which limit is in the way.
+func ofLimit(on about, limit string, most int) about {
+	on["limit"], on["most"] = limit, strconv.Itoa(most)
+	return on
 }
 
 // failure words an error of refuse for a part of an answer.

@@ -107,10 +107,15 @@ func (s *Server) carry(ctx context.Context, stream feedStream, requests <-chan r
 	cameAt := map[uint64]time.Time{} // batches without a receipt: those that wait at the owner, and the held one
 	draining := s.draining
 	stopping := false
+	paused := false // the held batch came too fast
+	pause := time.NewTimer(time.Hour)
+	defer pause.Stop()
 	for {
 		in, from := a.in, requests
 		var w work
 		switch {
+		case held != nil && paused:
+			in, from = nil, nil
 		case held != nil:
 			from, w = nil, *held
 		case stopping:
@@ -127,6 +132,11 @@ func (s *Server) carry(ctx context.Context, stream feedStream, requests <-chan r
 			held = &next
 			if next.batch != nil {
 				cameAt[next.batch.GetSequence()] = time.Now()
+				if wait, limit := s.await(o, len(next.batch.GetMeasurements())); wait > 0 {
+					s.cfg.Metrics.HeldBack(limit, wait)
+					paused = true
+					pause.Reset(wait)
+				}
 			}
 			if next.hangup || next.end {
 				requests = nil // nothing more is taken
@@ -156,8 +166,10 @@ func (s *Server) carry(ctx context.Context, stream feedStream, requests <-chan r
 			return o.takenOver()
 		case <-o.dead:
 			return o.err
+		case <-pause.C:
+			paused = false
 		case <-draining:
-			draining, stopping = nil, requests != nil
+			draining, stopping, paused = nil, requests != nil, false
 		case <-ctx.Done():
 			return status.FromContextError(ctx.Err()).Err()
 		}

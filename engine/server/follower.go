@@ -82,7 +82,8 @@ func (f *follower) offer(n *bulletin, now time.Time, latest bool) {
 	case asking && !latest:
 	case f.leavesOut() && !advances:
 	case f.changesOnly && !changed && f.asking.area == nil:
-	case f.interval > 0 && !changed && now.Before(s.due):
+	case f.every() > 0 && !changed && now.Before(s.due):
+		f.pass(s)
 		s.held = n
 		f.wakeAt(s.due)
 	case asking && (len(s.queue) > 0 || f.reader == nil):
@@ -95,13 +96,35 @@ func (f *follower) offer(n *bulletin, now time.Time, latest bool) {
 }
 
 // leavesOut reports whether the follower wants less than everything.
-func (f *follower) leavesOut() bool { return f.interval > 0 || f.changesOnly }
+func (f *follower) leavesOut() bool { return f.every() > 0 || f.changesOnly }
+
+// every is the least time between two posteriors of a vehicle: as the follower
+// wants, or longer while the server has too much to do.
+func (f *follower) every() time.Duration {
+	if f.hub.thins() {
+		return max(f.interval, thinnedTo)
+	}
+	return f.interval
+}
+
+// pass counts what is held and will not be told, if the follower wanted it.
+func (f *follower) pass(s *slot) {
+	if s.held != nil && !f.leavesOutByWish() {
+		s.skipped++
+	}
+}
+
+// leavesOutByWish reports whether it is the follower that wants less.
+func (f *follower) leavesOutByWish() bool { return f.interval > 0 || f.changesOnly }
 
 // push queues a posterior.
 func (f *follower) push(s *slot, n *bulletin, now time.Time) {
 	most := ahead
-	if f.interval > 0 {
+	if f.every() > 0 {
 		most = 1
+	}
+	if s.held != n {
+		f.pass(s)
 	}
 	if len(s.queue) >= most {
 		s.skipped += uint64(len(s.queue))
@@ -109,7 +132,7 @@ func (f *follower) push(s *slot, n *bulletin, now time.Time) {
 		s.queue = s.queue[:0]
 	}
 	s.queue = append(s.queue, n)
-	s.held, s.status, s.due = nil, n.p.Status, now.Add(f.interval)
+	s.held, s.status, s.due = nil, n.p.Status, now.Add(f.every())
 	f.list(s)
 }
 

@@ -120,7 +120,7 @@ func (f *follower) nextPosterior(s *slot, now time.Time) *bulletin {
 			s.toldStatus = 0
 		}
 	}
-	s.due = now.Add(f.interval)
+	s.due = now.Add(f.every())
 	if s.renewed = false; s.stale > 0 {
 		s.skipped += s.stale - 1
 		s.stale = 0

@@ -17,7 +17,8 @@ import (
 type hub struct {
 	now      func() time.Time
 	limits   Limits
-	instance [8]byte // in resume tokens, so that another server's are known
+	thins    func() bool // less is to be told for now
+	instance [8]byte     // in resume tokens, so that another server's are known
 
 	// mu guards all below, and the followers and slots. It is held for moments
 	// only: what takes time, such as a region, is computed outside.
@@ -50,9 +51,9 @@ type bulletin struct {
 	extra     *extra
 }
 
-func newHub(limits Limits, now func() time.Time) *hub {
+func newHub(limits Limits, now func() time.Time, thins func() bool) *hub {
 	return &hub{
-		now: now, limits: limits, instance: newInstance(),
+		now: now, limits: limits, thins: thins, instance: newInstance(),
 		subjects: map[string]*subject{}, named: map[string][]*follower{}, streams: map[streamID]*follower{},
 	}
 }

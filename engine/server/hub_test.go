@@ -24,11 +24,12 @@ type fleet struct {
 	said     map[string]int                            // posteriors, by vehicle
 	inside   float64                                   // of what is said: the probability of every area
 	answered int
+	busy     bool // less is to be told
 }
 
 func newFleet(limits Limits) *fleet {
 	fl := &fleet{clock: time.Unix(0, int64(began)), valid: map[*subject]map[int64]*summary.Posterior{}, said: map[string]int{}}
-	fl.hub = newHub(limits.withDefaults(), func() time.Time { return fl.clock })
+	fl.hub = newHub(limits.withDefaults(), func() time.Time { return fl.clock }, func() bool { return fl.busy })
 	return fl
 }
 

@@ -94,7 +94,7 @@ func (s *Server) watchHealth() {
 func (s *Server) fleet() operate.Fleet {
 	f := operate.Fleet{
 		Statuses: map[string]int{}, Alarms: map[string]int{}, Streams: int(s.streams.Load()), Followers: s.hub.readers(),
-		SearchesRunning: len(s.searching), SearchesWaiting: int(s.searchesWaiting.Load()), Maps: len(s.atlas.names()), Ready: s.Ready() == nil,
+		SearchesRunning: len(s.searching), SearchesWaiting: int(s.searchesWaiting.Load()), Load: s.load.value(), Maps: len(s.atlas.names()), Ready: s.Ready() == nil,
 	}
 	// Every word is always there, so that what is gone is told as 0.
 	for _, st := range statuses {

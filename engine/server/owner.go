@@ -8,6 +8,7 @@ import (
 	"sync/atomic"
 	"time"
 
+	"golang.org/x/time/rate"
 	"google.golang.org/grpc/status"
 
 	"leadline/engine/summary"
@@ -32,7 +33,8 @@ type owner struct {
 	err    error
 	// latest is the latest posterior, nil before the first. It is not changed.
 	latest atomic.Pointer[summary.Posterior]
-	cells  atomic.Int64 // of the belief
+	cells  atomic.Int64  // of the belief
+	pace   *rate.Limiter // of its measurements
 	// subject is the drive as those see it who follow the vehicle.
 	subject *subject
 
@@ -94,6 +96,8 @@ func newOwner(s *Server, req *leadlinev1.Open, m *mapUse, sess Session, beside *
 	}
 	o.subject, o.extras = o.newSubject(), newExtras(sess, m.Space)
 	o.alarms = map[alarmKey]uint64{}
+	o.pace = newPace(s.cfg.Limits.Rate, s.cfg.Limits)
+	o.measured()
 	o.log = newDriveLog(s.cfg.Log, s.cfg.Now, o.vehicle, o.drive)
 	return o
 }

@@ -32,6 +32,7 @@ type said struct {
 	code    codes.Code        // of a call
 	about   map[string]string // of a call
 	domain  string            // of a call
+	retry   time.Duration     // after how long it may do, of a call
 }
 
 func saidBy(err error) said {
@@ -41,6 +42,9 @@ func saidBy(err error) said {
 		if info, ok := d.(*errdetails.ErrorInfo); ok {
 			s.reason = leadlinev1.Reason(leadlinev1.Reason_value["REASON_"+info.GetReason()])
 			s.about, s.domain = info.GetMetadata(), info.GetDomain()
+		}
+		if info, ok := d.(*errdetails.RetryInfo); ok {
+			s.retry = info.GetRetryDelay().AsDuration()
 		}
 	}
 	return s
@@ -241,6 +245,18 @@ func wrongCalls(t *testing.T) []wrongCall {
 			openRaw(t, conn, d)
 			return open(func(o *leadlinev1.Open) { o.Header.Vehicle = "w" })(t, s, conn)
 		}},
+		{leadlinev1.Reason_REASON_SERVER_FULL, "limit most", Config{Limits: Limits{CellsInAll: 1}}, func(t *testing.T, s *Server, conn *grpc.ClientConn) said {
+			openRaw(t, conn, d)
+			return open(func(o *leadlinev1.Open) { o.Header.Vehicle = "w" })(t, s, conn)
+		}},
+		{leadlinev1.Reason_REASON_TOO_FAST, "drive limit most vehicle", Config{Limits: Limits{Rate: 1, BatchMeasurements: 1}}, func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
+			openRaw(t, conn, d)
+			var err error
+			for i := 0; i < 100 && (err == nil || i == 1); i++ {
+				_, err = leadlinev1.NewPositionServiceClient(conn).AddSighting(limited(t), &leadlinev1.AddSightingRequest{Vehicle: "v", Time: wire.FromTime(began), Sighting: box(0, 200)})
+			}
+			return saidBy(err)
+		}},
 		{leadlinev1.Reason_REASON_SILENT, "", Config{Limits: Limits{OpenTimeout: time.Millisecond}}, func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
 			return saidBy(ends(raw(t, conn)))
 		}},
@@ -359,6 +375,9 @@ func TestReasons(t *testing.T) {
 				if got.about[key] == "" {
 					t.Errorf("nothing about %s: %v", key, got.about)
 				}
+			}
+			if wait := c.reason == leadlinev1.Reason_REASON_TOO_FAST || retryAfter[c.reason] > 0; wait != (got.retry > 0) {
+				t.Errorf("the hint when to try again is %v", got.retry)
 			}
 			if n := len(strings.Fields(c.about)); n != len(got.about) {
 				t.Errorf("about %v, want %s", got.about, c.about)

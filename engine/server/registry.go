@@ -51,6 +51,9 @@ func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error)
 	if n := req.GetAcknowledged(); n > 0 {
 		return nil, lostAcknowledged(about{"vehicle": h.Vehicle, "drive": req.GetDrive()}, n, 0)
 	}
+	if err := s.mayOpen(); err != nil {
+		return nil, err
+	}
 	select {
 	case s.openings <- struct{}{}:
 	case <-ctx.Done():
@@ -140,11 +143,13 @@ func (s *Server) admit(req *leadlinev1.Open, m *mapUse, sess Session, beside *se
 	vehicle := req.GetHeader().GetVehicle()
 	if old := s.owners[vehicle]; old != nil {
 		old.stop(refuse(leadlinev1.Reason_REASON_REPLACED, old.about(), "vehicle %q has opened drive %q in place of drive %q", vehicle, req.GetDrive(), old.drive))
-		delete(s.owners, vehicle)
 	} else if len(s.owners) >= s.cfg.Limits.Vehicles && !s.makeRoom() {
 		return nil, full("vehicles", s.cfg.Limits.Vehicles, "open: the server has its %d vehicles, all of them on a drive: try later, or raise the limit", s.cfg.Limits.Vehicles)
 	}
 	o := newOwner(s, req, m, sess, beside)
+	if old := s.owners[vehicle]; old != nil {
+		o.pace = old.pace // another drive is no way to be faster
+	}
 	s.record(o, opened)
 	s.owners[vehicle] = o
 	s.atlas.hold(m)

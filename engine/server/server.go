@@ -9,6 +9,7 @@ import (
 	"sync/atomic"
 	"time"
 
+	"golang.org/x/time/rate"
 	"google.golang.org/grpc"
 	"google.golang.org/grpc/health"
 	healthv1 "google.golang.org/grpc/health/grpc_health_v1"
@@ -36,7 +37,9 @@ type Server struct {
 	searching   chan struct{} // and one a search of a whole map
 	// searchesWaiting counts those for which there is no token.
 	searchesWaiting atomic.Int64
-	serving         atomic.Bool // it has begun to listen
+	load            load
+	pace            *rate.Limiter // of all vehicles' measurements
+	serving         atomic.Bool   // it has begun to listen
 	streams         atomic.Int64
 	drawing         chan struct{} // and one a map being drawn
 	hub             *hub
@@ -87,10 +90,12 @@ func New(cfg Config) (*Server, error) {
 		draining:    make(chan struct{}),
 		owners:      map[string]*owner{},
 		kept:        map[string]*kept{},
-		hub:         newHub(cfg.Limits, cfg.Now),
+		pace:        newPace(cfg.Limits.RateInAll, cfg.Limits),
 		alarms:      newAlarmBook(cfg.Now),
 		atlas:       newAtlas(cfg.Maps),
 	}
+	s.load.limit, s.load.over = float64(cfg.Limits.Load), cfg.Limits.LoadOver
+	s.hub = newHub(cfg.Limits, cfg.Now, s.load.thins)
 	options := []grpc.ServerOption{
 		grpc.Creds(web.Credentials()),
 		grpc.MaxRecvMsgSize(cfg.Limits.MessageBytes),
@@ -146,14 +151,12 @@ func New(cfg Config) (*Server, error) {
 func (s *Server) Serve(l net.Listener) error {
 	s.serving.Store(true)
 	_ = s.tellHealth()
-	watching := make(chan struct{})
-	go func() {
-		defer close(watching)
-		s.watchHealth()
-	}()
+	var watching sync.WaitGroup
+	watching.Go(s.watchHealth)
+	watching.Go(s.watchLoad)
 	defer func() { // with the server's end, also where it fails
 		s.drain.Do(func() { close(s.draining) })
-		<-watching
+		watching.Wait()
 	}()
 	http2, others := web.Split(l, s.cfg.Encryption)
 	answered := make(chan error, 1)

@@ -40,6 +40,9 @@ func (s *Server) AddSighting(ctx context.Context, req *leadlinev1.AddSightingReq
 	if d := req.GetDrive(); d != "" && d != o.drive {
 		return nil, refuse(leadlinev1.Reason_REASON_OTHER_DRIVE, o.about(), "vehicle %q is on drive %q, not %q: name that one, or none", o.vehicle, o.drive, clip(d))
 	}
+	if err := s.mayAdd(o); err != nil {
+		return nil, err
+	}
 	latest := func() (p *leadlinev1.Posterior, err error) {
 		done := make(chan *leadlinev1.Posterior, 1)
 		err = o.do(ctx, func() {

@@ -21,8 +21,10 @@ type Fleet struct {
 	Streams, Followers int
 	// SearchesRunning and SearchesWaiting are whole-map searches.
 	SearchesRunning, SearchesWaiting int
-	Maps                             int
-	Ready                            bool
+	// Load is the number of drives at work for each processor.
+	Load  float64
+	Maps  int
+	Ready bool
 }
 
 // Watch has the state of a fleet in each scrape. state is called for each, from
@@ -44,12 +46,13 @@ var (
 	largestPruned = gauge("mass_pruned_largest", "Most probability that was pruned from one belief since its drive began.")
 	streams       = gauge("streams", "Streams by call: Feed or Follow.", "method")
 	searches      = gauge("searches", "Searches of a whole map: running or waiting.", "state")
+	loaded        = gauge("load", "Drives at work or waiting for a processor, for each processor, averaged over some seconds.")
 	served        = gauge("maps", "Maps that drives may name.")
 	ready         = gauge("ready", "1 if the server can serve.")
 )
 
 func (fleetCollector) Describe(to chan<- *prometheus.Desc) {
-	for _, d := range []*prometheus.Desc{drives, statuses, alarms, cells, largestCells, largestPruned, streams, searches, served, ready} {
+	for _, d := range []*prometheus.Desc{drives, statuses, alarms, cells, largestCells, largestPruned, streams, searches, loaded, served, ready} {
 		to <- d
 	}
 }
@@ -75,6 +78,7 @@ func (c fleetCollector) Collect(to chan<- prometheus.Metric) {
 	put(streams, float64(f.Followers), "Follow")
 	put(searches, float64(f.SearchesRunning), "running")
 	put(searches, float64(f.SearchesWaiting), "waiting")
+	put(loaded, f.Load)
 	put(served, float64(f.Maps))
 	up := 0.0
 	if f.Ready {

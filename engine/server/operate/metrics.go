@@ -24,6 +24,8 @@ type Metrics struct {
 	posteriors  prometheus.Counter
 	acknowledge prometheus.Histogram
 	skipped     prometheus.Counter
+	thinned     prometheus.Counter
+	heldBack    *prometheus.CounterVec
 }
 
 // NewMetrics makes a set with nothing counted.
@@ -54,8 +56,14 @@ func NewMetrics(version string) *Metrics {
 		skipped: prometheus.NewCounter(prometheus.CounterOpts{
 			Name: "leadline_followers_skipped_total", Help: "Posteriors that followers were too slow for.",
 		}),
+		thinned: prometheus.NewCounter(prometheus.CounterOpts{
+			Name: "leadline_posteriors_thinned_total", Help: "Posteriors that streams wanted and were not told, since the server had too much to do.",
+		}),
+		heldBack: prometheus.NewCounterVec(prometheus.CounterOpts{
+			Name: "leadline_held_back_seconds_total", Help: "Time for which batches that came too fast had to wait, s, by limit.",
+		}, []string{"limit"}),
 	}
-	m.registry.MustRegister(m.calls, m.seconds, m.refusals, m.accepted, m.refused, m.posteriors, m.acknowledge, m.skipped,
+	m.registry.MustRegister(m.calls, m.seconds, m.refusals, m.accepted, m.refused, m.posteriors, m.acknowledge, m.skipped, m.thinned, m.heldBack,
 		collectors.NewGoCollector(), collectors.NewProcessCollector(collectors.ProcessCollectorOpts{}))
 	m.Gauge("leadline_build_info", "Always 1; the label is the version.", prometheus.Labels{"version": version}, func() float64 { return 1 })
 	return m
@@ -90,6 +98,14 @@ func (m *Metrics) Released(n int) { m.posteriors.Add(float64(n)) }
 
 // Acknowledged notes how long a batch has waited for its receipt.
 func (m *Metrics) Acknowledged(took time.Duration) { m.acknowledge.Observe(took.Seconds()) }
+
+// Thinned counts a posterior that a stream wanted and was not told.
+func (m *Metrics) Thinned() { m.thinned.Inc() }
+
+// HeldBack counts how long a batch has to wait for a limit.
+func (m *Metrics) HeldBack(limit string, wait time.Duration) {
+	m.heldBack.WithLabelValues(limit).Add(wait.Seconds())
+}
 
 // Skipped counts posteriors that a follower was too slow for.
 func (m *Metrics) Skipped(n uint64) { m.skipped.Add(float64(n)) }

@@ -61,7 +61,7 @@ func everyMetric() *Metrics {
 	m.Watch(func() Fleet {
 		return Fleet{
 			Connected: 3, Silent: 2, Ended: 1, Statuses: map[string]int{"located": 4}, Alarms: map[string]int{"bias": 5}, Cells: 600, LargestCells: 300,
-			LargestPruned: 1e-9, Streams: 7, Followers: 8, SearchesRunning: 9, SearchesWaiting: 10, Maps: 11, Ready: true,
+			LargestPruned: 1e-9, Streams: 7, Followers: 8, SearchesRunning: 9, SearchesWaiting: 10, Load: 2.5, Maps: 11, Ready: true,
 		}
 	})
 	m.Gauge("leadline_certificate_end_seconds", "When the server's certificate ends, s since 1970.", nil, func() float64 { return 2e9 })
@@ -72,6 +72,8 @@ func everyMetric() *Metrics {
 	m.Released(12)
 	m.Acknowledged(2 * time.Millisecond)
 	m.Skipped(13)
+	m.Thinned()
+	m.HeldBack("rate", 1500*time.Millisecond)
 	return m
 }
 
@@ -97,6 +99,9 @@ func TestMetrics(t *testing.T) {
 		"leadline_mass_pruned_largest":         {"": 1e-9},
 		"leadline_streams":                     {"Feed": 7, "Follow": 8},
 		"leadline_searches":                    {"running": 9, "waiting": 10},
+		"leadline_load":                        {"": 2.5},
+		"leadline_posteriors_thinned_total":    {"": 1},
+		"leadline_held_back_seconds_total":     {"rate": 1.5},
 		"leadline_maps":                        {"": 11},
 		"leadline_ready":                       {"": 1},
 		"leadline_certificate_end_seconds":     {"": 2e9},

@@ -30,7 +30,7 @@ const (
 	Reply_REPLY_UNSPECIFIED Reply = 0
 	// The last one that each batch released.
 	Reply_REPLY_LATEST Reply = 1
-	// All.
+	// All; while the server is overloaded the last one that each batch released.
 	Reply_REPLY_EVERY Reply = 2
 	// None; ask for them with Where.
 	Reply_REPLY_NONE Reply = 3

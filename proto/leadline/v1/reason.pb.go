@@ -106,6 +106,9 @@ const (
 	// The caller's roles do not allow the call, or not for that vehicle.
 	// PERMISSION_DENIED.
 	Reason_REASON_NOT_ALLOWED Reason = 46
+	// It is more than a limit on rates allows: try again after the time in the
+	// error's google.rpc.RetryInfo. RESOURCE_EXHAUSTED.
+	Reason_REASON_TOO_FAST Reason = 47
 	// There is no room to keep measurements, on the disk or within the journal's
 	// bound: send again later what was not acknowledged. RESOURCE_EXHAUSTED.
 	Reason_REASON_JOURNAL_FULL Reason = 50
@@ -154,6 +157,7 @@ var (
 		44: "REASON_IDENTITY_EXPIRED",
 		45: "REASON_IDENTITY_UNCHECKED",
 		46: "REASON_NOT_ALLOWED",
+		47: "REASON_TOO_FAST",
 		50: "REASON_JOURNAL_FULL",
 		51: "REASON_JOURNAL_DOWN",
 		52: "REASON_JOURNAL_DAMAGED",
@@ -193,6 +197,7 @@ var (
 		"REASON_IDENTITY_EXPIRED":   44,
 		"REASON_IDENTITY_UNCHECKED": 45,
 		"REASON_NOT_ALLOWED":        46,
+		"REASON_TOO_FAST":           47,
 		"REASON_JOURNAL_FULL":       50,
 		"REASON_JOURNAL_DOWN":       51,
 		"REASON_JOURNAL_DAMAGED":    52,
@@ -287,7 +292,7 @@ const file_leadline_v1_reason_proto_rawDesc = "" +
 	"\x18leadline/v1/reason.proto\x12\vleadline.v1\"P\n" +
 	"\aFailure\x12+\n" +
 	"\x06reason\x18\x01 \x01(\x0e2\x13.leadline.v1.ReasonR\x06reason\x12\x18\n" +
-	"\amessage\x18\x02 \x01(\tR\amessage*\x81\a\n" +
+	"\amessage\x18\x02 \x01(\tR\amessage*\x96\a\n" +
 	"\x06Reason\x12\x16\n" +
 	"\x12REASON_UNSPECIFIED\x10\x00\x12\x13\n" +
 	"\x0fREASON_UNUSABLE\x10\x01\x12\x16\n" +
@@ -322,7 +327,8 @@ const file_leadline_v1_reason_proto_rawDesc = "" +
 	"\x13REASON_BAD_IDENTITY\x10+\x12\x1b\n" +
 	"\x17REASON_IDENTITY_EXPIRED\x10,\x12\x1d\n" +
 	"\x19REASON_IDENTITY_UNCHECKED\x10-\x12\x16\n" +
-	"\x12REASON_NOT_ALLOWED\x10.\x12\x17\n" +
+	"\x12REASON_NOT_ALLOWED\x10.\x12\x13\n" +
+	"\x0fREASON_TOO_FAST\x10/\x12\x17\n" +
 	"\x13REASON_JOURNAL_FULL\x102\x12\x17\n" +
 	"\x13REASON_JOURNAL_DOWN\x103\x12\x1a\n" +
 	"\x16REASON_JOURNAL_DAMAGED\x104B'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"

@@ -410,7 +410,7 @@ export enum Reply {
   LATEST = 1,
 
   /**
-   * All.
+   * All; while the server is overloaded the last one that each batch released.
    *
    * @generated from enum value: REPLY_EVERY = 2;
    */

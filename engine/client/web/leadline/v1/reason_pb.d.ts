@@ -292,6 +292,14 @@ export enum Reason {
   NOT_ALLOWED = 46,
 
   /**
+   * It is more than a limit on rates allows: try again after the time in the
+   * error's google.rpc.RetryInfo. RESOURCE_EXHAUSTED.
+   *
+   * @generated from enum value: REASON_TOO_FAST = 47;
+   */
+  TOO_FAST = 47,
+
+  /**
    * There is no room to keep measurements, on the disk or within the journal's
    * bound: send again later what was not acknowledged. RESOURCE_EXHAUSTED.
    *
