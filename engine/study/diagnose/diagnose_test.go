@@ -54,8 +54,9 @@ func named(r *Report) (out []string) {
 }
 
 // TestFindsPlantedMistakes plants each usual mistake in simulated logs. The
-// diagnosis knows the log and the map alone. In the short form some mistakes
-// twice each; in the long one all ten times, of which nine must be named.
+// diagnosis knows the log and the map alone. In the short form most of them twice
+// each, within an opening that is enough for them; in the long one all ten times,
+// of which nine must be named.
 func TestFindsPlantedMistakes(t *testing.T) {
 	seeds, least := 2, 2
 	if accept.Long() {
