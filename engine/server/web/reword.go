@@ -15,10 +15,16 @@ import (
 // unknownField is how the library says that a message has no such field.
 var unknownField = regexp.MustCompile(`unknown field "?([^"\s]+)"?`)
 
+// saidMost bounds the library's words.
+const saidMost = 500
+
 // reworded is what is wrong with a request that could not be read as a message,
 // and what to do. said is in the library's words, which begin with what it was
 // doing and by what package.
 func reworded(said string) *status.Status {
+	if len(said) > saidMost { // it quotes the request
+		said = strings.ToValidUTF8(said[:saidMost], "") + "…"
+	}
 	what, isBody := strings.CutPrefix(said, "unmarshal message: ")
 	what = strings.TrimPrefix(what, "proto: ")
 	if m := unknownField.FindStringSubmatch(what); m != nil {

@@ -19,11 +19,12 @@ func TestReworded(t *testing.T) {
 		{`unmarshal message: proto: syntax error (line 1:14): unexpected token`, "BAD_FIELD", "", "no message of this call: syntax error (line 1:14)"},
 		{`unmarshal message: unexpected EOF`, "BAD_FIELD", "", "whole JSON object"},
 		{`unmarshal message: proto: (line 1:30): invalid value for double field risk: "x"`, "BAD_FIELD", "", "field risk"},
+		{`unmarshal message: proto: (line 1:2): unknown field "` + strings.Repeat("é", 1e6) + `"`, "BAD_FIELD", strings.Repeat("é", 223) + "…", "unknown field"},
 		{`something else`, "BAD_FIELD", "", "something else"},
 	} {
 		st := reworded(c.said)
 		info := st.Details()[0].(*errdetails.ErrorInfo)
-		if info.GetReason() != c.reason || info.GetMetadata()["field"] != c.field || !strings.Contains(st.Message(), c.words) || strings.Contains(st.Message(), "unmarshal") {
+		if info.GetReason() != c.reason || info.GetMetadata()["field"] != c.field || !strings.Contains(st.Message(), c.words) || len(st.Message()) > 1000 || strings.Contains(st.Message(), "unmarshal") {
 			t.Errorf("%s: %s, %v", c.said, st.Message(), info)
 		}
 	}
