@@ -2,6 +2,7 @@ package filter
 
 import (
 	"math"
+	"slices"
 
 	"leadline/engine/geo"
 	"leadline/engine/kernel"
@@ -170,6 +171,13 @@ func (c *Gaussians) store(g *gaussian, i, k int) {
 // reset empties the columns and keeps their memory.
 func (c *Gaussians) reset() {
 	c.Key, c.Mass, c.Mean, c.Cov = c.Key[:0], c.Mass[:0], c.Mean[:0], c.Cov[:0]
+}
+
+// empty is reset with memory for n Gaussians over k quantities.
+func (c *Gaussians) empty(n, k int) {
+	c.reset()
+	c.Key, c.Mass = slices.Grow(c.Key, n), slices.Grow(c.Mass, n)
+	c.Mean, c.Cov = slices.Grow(c.Mean, n*k), slices.Grow(c.Cov, n*k*(k+1)/2)
 }
 
 // angularMask has bit i set if quantity i is angular.

@@ -41,9 +41,9 @@ type merger struct {
 // most. trace, if not nil, gets for each entry of src the entry of
 // dst it went into.
 func (m *merger) merge(dst, src *Gaussians, k int, angular uint, most int, trace []int32) {
-	dst.reset()
-	m.sort(src.Key)
 	n := len(src.Key)
+	dst.empty(n, k)
+	m.sort(src.Key)
 	groups, g := &m.groups, &m.g
 	for a := 0; a < n; {
 		key := src.Key[m.order[a]]

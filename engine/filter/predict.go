@@ -161,7 +161,7 @@ const maxPieces = 1 << 19
 // that makes too many pieces.
 func (mv *mover) send(b *Belief, w *Workspace) bool {
 	step, k := &mv.step, mv.k
-	mv.out.reset()
+	mv.out.empty(len(b.Key), k)
 	w.source = w.source[:0]
 	mv.pruned, mv.left, mv.cuts = 0, 0, 0
 	add := step.Add

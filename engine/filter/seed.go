@@ -42,9 +42,10 @@ const subPoints = 4
 
 func (b *Belief) seedLines(s LineSpace, prior Prior, maxCells int) error {
 	charts := reached(s, prior)
-	level := 0
+	level, n := 0, 0
 	for ; level < s.Levels()-1; level++ {
-		n, lines := 0, s.Lines(level)
+		lines := s.Lines(level)
+		n = 0
 		for _, c := range charts {
 			n += int(lines.Cells[c])
 		}
@@ -59,6 +60,7 @@ func (b *Belief) seedLines(s LineSpace, prior Prior, maxCells int) error {
 	var chart []int32
 	var along, density []float64
 	k := len(b.Quantities)
+	b.empty(min(n, maxCells), k)
 	total := 0.0
 	for _, c := range charts {
 		n, h := int(lines.Cells[c]), lines.WidthM[c]

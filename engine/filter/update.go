@@ -67,7 +67,7 @@ func (b *Belief) condition(space Space, l any, w *Workspace) {
 		if p := w.asked(); p != nil {
 			b.foretell(p, l, &noise, w)
 		}
-		w.out.reset()
+		w.out.empty(n, k)
 		var g gaussian
 		for i := range n {
 			b.load(&g, i, k)

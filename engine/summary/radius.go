@@ -2,6 +2,7 @@ package summary
 
 import (
 	"math"
+	"slices"
 
 	"leadline/engine/geo"
 	"leadline/engine/kernel"
@@ -42,6 +43,9 @@ func ringFrom(i int) float64 {
 // takeApart fills the pieces of the whole mixture around a centre.
 func (s *Summarizer) takeApart(centre geo.Point, meanSquare float64) {
 	s.discs, s.needles, s.dots = s.discs[:0], s.needles[:0], false
+	if s.dim == 1 && len(s.mass) > fewPieces {
+		s.needles = slices.Grow(s.needles, len(s.mass)) // a wide belief has mostly one each
+	}
 	for i, m := range s.mass {
 		if m > 0 {
 			s.take(m, geo.Point{E: s.east[i], N: s.north[i]}.Sub(centre), s.covs[i], meanSquare)
