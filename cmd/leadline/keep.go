@@ -7,6 +7,7 @@ import (
 	"fmt"
 	"io"
 	"os"
+	"time"
 
 	"github.com/spf13/cobra"
 
@@ -19,6 +20,7 @@ type keepOptions struct {
 	broker journal.Broker
 	// In MiB.
 	mostMiB, freeMiB int64
+	keepFor          time.Duration
 }
 
 // flags adds the options' flags.
@@ -33,11 +35,15 @@ func (o *keepOptions) flags(c *cobra.Command) {
 	f.IntVar(&o.broker.Replicas, "broker-replicas", 1, "how many of the broker's servers keep each record, of a journal that is new")
 	f.Int64Var(&o.mostMiB, "journal-mib", 4096, "greatest size of the journal, MiB; old records that no drive needs go first")
 	f.Int64Var(&o.freeMiB, "journal-free-mib", 256, "what is left free on the disk of --data, MiB: with less, new measurements are refused")
-	settable(c, "data", "broker", "broker-credentials", "broker-authority", "broker-certificate", "broker-key", "broker-replicas", "journal-mib", "journal-free-mib")
+	f.DurationVar(&o.keepFor, "keep-for", 720*time.Hour, "for how long what was measured is kept at most, and drives that are silent; 0 is without end")
+	settable(c, "keep-for", "data", "broker", "broker-credentials", "broker-authority", "broker-certificate", "broker-key", "broker-replicas", "journal-mib", "journal-free-mib")
 }
 
 // options are those of the journal; nil where nothing is kept.
 func (o *keepOptions) options() (*journal.Options, error) {
+	if o.keepFor != 0 && o.keepFor < time.Second {
+		return nil, fmt.Errorf("--keep-for is %v: give a second or more, such as 720h, or 0", o.keepFor)
+	}
 	if o.data == "" && o.broker.URL == "" {
 		b := o.broker
 		if b.Replicas = 0; b != (journal.Broker{}) {

@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"strings"
+	"time"
 
 	"github.com/spf13/cobra"
 	"google.golang.org/grpc"
@@ -50,12 +51,17 @@ func (r *reach) dial() (*grpc.ClientConn, error) {
 
 // asking calls a server once or a few times, and words what goes wrong.
 func asking(r *reach, ask func(context.Context, leadlinev1.PositionServiceClient) error) error {
+	return askingFor(patient, r, ask)
+}
+
+// askingFor is asking with another patience.
+func askingFor(wait time.Duration, r *reach, ask func(context.Context, leadlinev1.PositionServiceClient) error) error {
 	conn, err := r.dial()
 	if err != nil {
 		return err
 	}
 	defer conn.Close()
-	ctx, cancel := context.WithTimeout(context.Background(), patient)
+	ctx, cancel := context.WithTimeout(context.Background(), wait)
 	defer cancel()
 	if err := ask(ctx, leadlinev1.NewPositionServiceClient(conn)); err != nil {
 		return serverError(err, r.address)

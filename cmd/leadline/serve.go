@@ -114,7 +114,7 @@ func (o *serveOptions) config() (cfg *server.Config, closeMaps func(), err error
 			m.Close()
 		}
 	}
-	cfg = &server.Config{Origins: o.origins, Page: page.Handler(), MaxCells: o.maxCells, Suites: map[string]*sensor.Suite{}, Limits: o.limits(o.vehicles)}
+	cfg = &server.Config{Origins: o.origins, KeepFor: o.keep.keepFor, Page: page.Handler(), MaxCells: o.maxCells, Suites: map[string]*sensor.Suite{}, Limits: o.limits(o.vehicles)}
 	for _, arg := range o.maps {
 		name, path := named(arg, mapName)
 		m, err := openMap(path)

@@ -22,6 +22,10 @@ const (
 
 func subject(partition int) string { return subjectPrefix + strconv.Itoa(partition) }
 
+// copySubject is where packs are that stand for those of a partition from which
+// something was erased.
+func copySubject(partition int) string { return subjectPrefix + "copy-" + strconv.Itoa(partition) }
+
 // startTimeout bounds how long the broker may take to be ready: it reads its
 // files then.
 const startTimeout = 2 * time.Minute
@@ -57,7 +61,7 @@ func connect(o *Options) (*broker, error) {
 	}
 	conn, err := nats.Connect(o.Broker.URL, opts...)
 	if err != nil {
-		return nil, fmt.Errorf("journal: broker %s: %w", o.Broker.URL, err)
+		return nil, fmt.Errorf("journal: broker %s: %w", o.Broker.address(), err)
 	}
 	b := &broker{conn: conn}
 	return b, b.open()

@@ -30,6 +30,10 @@ func (p *partition) commit(ctx context.Context, batch []waiting) error {
 		}
 		numbers[w.line] = n + 1
 		w.part.number = n + 1
+		if w.part.parts&firstPart != 0 {
+			w.line.first = next.number
+		}
+		w.first = w.line.first
 		next.records = append(next.records, w.part)
 	}
 	p.buf = next.appendTo(p.buf[:0])
@@ -50,14 +54,16 @@ func (p *partition) commit(ctx context.Context, batch []waiting) error {
 	defer p.mu.Unlock()
 	next.lines, next.first = max(p.pack.lines, next.lines), max(p.pack.first, next.first)
 	p.pack, p.last = next, sequence
-	p.note(next.number, sequence)
+	p.note(next.number, sequence, time.Now())
 	return nil
 }
 
 // note keeps where a pack is; p.mu is held.
-func (p *partition) note(number, sequence uint64) {
-	if n := len(p.places); n == 0 || number >= p.places[n-1].number+indexEvery {
-		p.places = append(p.places, indexed{number, sequence})
+func (p *partition) note(number, sequence uint64, at time.Time) {
+	p.written = at
+	n := len(p.places)
+	if n == 0 || number >= p.places[n-1].number+indexEvery || p.j.o.MaxAge > 0 && at.Sub(p.places[n-1].at) >= p.j.o.MaxAge/ages {
+		p.places = append(p.places, indexed{number, sequence, at})
 	}
 }
 

@@ -44,6 +44,8 @@ type Journal struct {
 	commits atomic.Uint64
 	refused atomic.Uint64
 	room    room
+	sweep   sync.Mutex // held while packs are let go or replaced
+	stale   []uint64   // sequences of packs whose copies are in, found by Open
 
 	ended context.Context // done when the journal is closed
 	end   context.CancelFunc
@@ -105,6 +107,11 @@ func Open(ctx context.Context, o Options, take func(Record) error) (*Journal, *F
 	}
 	if err := j.takeOver(ctx); err != nil {
 		return fail(err)
+	}
+	for _, sequence := range j.stale { // an erasure was interrupted
+		if err := st.SecureDeleteMsg(ctx, sequence); err != nil {
+			return fail(fmt.Errorf("journal: erasing message %d: %w", sequence, err))
+		}
 	}
 	for _, p := range j.parts {
 		j.tasks.Go(p.run)
@@ -209,6 +216,10 @@ type State struct {
 	Records, Commits, Refused uint64
 	// Lines is how many lines it keeps records for.
 	Lines int
+	// Oldest is when the oldest record that is kept was written; zero if there is
+	// none. MaxAge is for how long records are kept at most.
+	Oldest time.Time
+	MaxAge time.Duration
 	// Err is why new records are refused now; nil if they are taken.
 	Err error
 }
@@ -218,10 +229,10 @@ func (j *Journal) State() State {
 	s := State{
 		Where: j.o.Dir, Epoch: j.epoch, Partitions: len(j.parts),
 		Bytes: j.bytes.Load(), MaxBytes: j.o.MaxBytes, FreeBytes: -1, LeaveBytes: j.o.FreeBytes,
-		Records: j.records.Load(), Commits: j.commits.Load(), Refused: j.refused.Load(),
+		MaxAge: j.o.MaxAge, Records: j.records.Load(), Commits: j.commits.Load(), Refused: j.refused.Load(),
 	}
 	if s.Where == "" {
-		s.Where, s.LeaveBytes = j.o.Broker.URL, 0
+		s.Where, s.LeaveBytes = j.o.Broker.address(), 0
 	} else if free, err := freeBytes(j.o.Dir); err == nil {
 		s.FreeBytes = free
 	}
@@ -229,6 +240,9 @@ func (j *Journal) State() State {
 		p.mu.Lock()
 		s.Waiting += len(p.queue) + p.taken
 		s.Lines += len(p.lines)
+		if len(p.places) > 0 && p.pack.number > p.places[0].number && (s.Oldest.IsZero() || p.places[0].at.Before(s.Oldest)) {
+			s.Oldest = p.places[0].at
+		}
 		s.Err = errors.Join(s.Err, p.down)
 		p.mu.Unlock()
 	}

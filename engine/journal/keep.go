@@ -2,9 +2,12 @@ package journal
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"sync"
 	"time"
+
+	"github.com/nats-io/nats.go/jetstream"
 )
 
 // Old records go when the journal is past goFrom of its bound, until it is at
@@ -16,6 +19,8 @@ const (
 	fullFrom   = 0.90
 	urgentFrom = 0.97
 	keepEvery  = time.Second
+	// ages is in how many steps records reach the age at which they go.
+	ages = 16
 )
 
 // room remembers whether the journal was full, so that it is said once.
@@ -48,6 +53,7 @@ func (j *Journal) keep() {
 	tick := time.NewTicker(keepEvery)
 	defer tick.Stop()
 	var seen uint64
+	var aged time.Time
 	for {
 		select {
 		case <-j.ended.Done():
@@ -55,6 +61,12 @@ func (j *Journal) keep() {
 		case <-tick.C:
 		}
 		j.say()
+		if now := time.Now(); j.o.MaxAge > 0 && now.Sub(aged) >= j.o.MaxAge/(4*ages) {
+			aged = now
+			if err := j.age(j.ended, now); err != nil && j.ended.Err() == nil {
+				j.o.Log.Warn("journal cannot be tidied", "error", err)
+			}
+		}
 		if n := j.commits.Load(); n == seen && float64(j.bytes.Load()) < goFrom*float64(j.o.MaxBytes) {
 			continue
 		} else {
@@ -96,6 +108,10 @@ func (j *Journal) tidy(ctx context.Context) error {
 	// As if all messages were of one size.
 	over := 1 - goTo*float64(j.o.MaxBytes)/float64(state.Bytes)
 	until := state.FirstSeq + uint64(over*float64(state.LastSeq-state.FirstSeq))
+	if !j.sweep.TryLock() {
+		return nil // something is being erased, which makes no less room
+	}
+	defer j.sweep.Unlock()
 	for _, p := range j.parts {
 		if err := j.drop(call, p, until); err != nil {
 			return fmt.Errorf("partition %d: %w", p.index+1, err)
@@ -105,6 +121,37 @@ func (j *Journal) tidy(ctx context.Context) error {
 		j.bytes.Store(int64(st.CachedInfo().State.Bytes))
 	}
 	return err
+}
+
+// age lets go what is older than records may be, and asks those who stand in the
+// way.
+func (j *Journal) age(ctx context.Context, now time.Time) error {
+	if !j.sweep.TryLock() {
+		return nil
+	}
+	defer j.sweep.Unlock()
+	call, cancel := context.WithTimeout(ctx, callTimeout)
+	defer cancel()
+	for _, p := range j.parts {
+		p.mu.Lock()
+		quiet := p.pack.number > p.pack.first && now.Sub(p.written) >= j.o.MaxAge/ages
+		var until uint64
+		for _, at := range p.places {
+			if now.Sub(at.at) >= j.o.MaxAge {
+				until = at.sequence
+			}
+		}
+		p.mu.Unlock()
+		if quiet { // so that there is something to begin with once the rest is gone
+			if err := p.header(call); err != nil {
+				return fmt.Errorf("partition %d: %w", p.index+1, err)
+			}
+		}
+		if err := j.drop(call, p, until); err != nil {
+			return fmt.Errorf("partition %d: %w", p.index+1, err)
+		}
+	}
+	return nil
 }
 
 // drop lets go of a partition's packs before a sequence of the broker's, but for
@@ -125,7 +172,29 @@ func (j *Journal) drop(ctx context.Context, p *partition, until uint64) error {
 	if err != nil {
 		return err
 	}
-	return st.Purge(ctx, purgeBefore(p.subject, target.sequence)...)
+	if err := st.Purge(ctx, purgeBefore(p.subject, target.sequence)...); err != nil {
+		return err
+	}
+	return p.dropCopies(ctx, st, target.number)
+}
+
+// dropCopies lets go of the copies of packs before one.
+func (p *partition) dropCopies(ctx context.Context, st jetstream.Stream, before uint64) error {
+	p.mu.Lock()
+	old := map[uint64]uint64{}
+	for number, sequence := range p.copies {
+		if number < before {
+			old[number] = sequence
+			delete(p.copies, number)
+		}
+	}
+	p.mu.Unlock()
+	for number, sequence := range old {
+		if err := st.DeleteMsg(ctx, sequence); err != nil && !errors.Is(err, jetstream.ErrMsgNotFound) {
+			return fmt.Errorf("copy of pack %d: %w", number, err)
+		}
+	}
+	return nil
 }
 
 // target chooses the first pack that is to be kept, and who is to be asked to

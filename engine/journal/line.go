@@ -1,6 +1,9 @@
 package journal
 
-import "fmt"
+import (
+	"fmt"
+	"time"
+)
 
 // Record is one that was read.
 type Record struct {
@@ -9,11 +12,14 @@ type Record struct {
 	// Number counts the parts of a line from 1; a record of several has that of
 	// its last. Pack is the pack that it is in, or its last part.
 	Number, Pack uint64
-	Data         []byte
+	// Time is when the pack was written, by the broker's clock.
+	Time time.Time
+	Data []byte
 }
 
-// At is where a record is: its pack in the partition, and its number in the line.
-type At struct{ Pack, Number uint64 }
+// At is where a record is: its pack in the partition, or that of its last part,
+// and its number in the line. First is the pack of its first part.
+type At struct{ Pack, Number, First uint64 }
 
 // Place names a line.
 type Place struct {
@@ -27,6 +33,7 @@ type Line struct {
 	p      *partition
 	id     uint64
 	number uint64 // of the last record that is in, of the committer
+	first  uint64 // pack of the first part of the last record, of the committer
 	// Guarded by p.mu: the first pack that is needed, and why nothing is taken.
 	keep    uint64
 	pressed bool // has been asked to need less

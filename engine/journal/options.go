@@ -5,6 +5,8 @@ import (
 	"fmt"
 	"log/slog"
 	"net/url"
+	"strings"
+	"time"
 )
 
 // Options say where a journal is and what it may take.
@@ -19,6 +21,9 @@ type Options struct {
 	// FreeBytes is what is left free on the disk of Dir: below it new records
 	// are refused. Default 256 MiB.
 	FreeBytes int64
+	// MaxAge is for how long records are kept at most, give or take a sixteenth;
+	// what lines need is asked for anew in time. 0 is without end.
+	MaxAge time.Duration
 	// Partitions is in how many the lines are divided, of a journal that is new.
 	// Default 4.
 	Partitions int
@@ -39,11 +44,24 @@ type Broker struct {
 	Replicas int
 }
 
+// address is the URL without what a user proves himself with.
+func (b *Broker) address() string {
+	parts := strings.Split(b.URL, ",")
+	for i, p := range parts {
+		if u, err := url.Parse(strings.TrimSpace(p)); err == nil {
+			u.User = nil
+			parts[i] = u.String()
+		}
+	}
+	return strings.Join(parts, ",")
+}
+
 // The bounds of the options.
 const (
 	minBytes      = 32 << 20
 	maxPartitions = 256
 	maxReplicas   = 5
+	minAge        = time.Second
 )
 
 func (o Options) withDefaults() Options {
@@ -88,6 +106,9 @@ func (o *Options) Validate() error {
 	}
 	if o.FreeBytes < 0 {
 		add("%d bytes to be left free is negative", o.FreeBytes)
+	}
+	if o.MaxAge < 0 || o.MaxAge > 0 && o.MaxAge < minAge {
+		add("records are to be kept for %v: give %v or more, or 0", o.MaxAge, minAge)
 	}
 	if o.Partitions < 0 || o.Partitions > maxPartitions {
 		add("%d partitions: give 1 to %d", o.Partitions, maxPartitions)

@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"sync"
+	"time"
 )
 
 // partition is one subject and its committer.
@@ -23,6 +24,10 @@ type partition struct {
 	lines  map[uint64]*Line
 	pack   pack // the last that is in; its records are none
 	places []indexed
+	// written is when the last pack was; copies are where packs are that stand
+	// for those from which something was erased, by their number.
+	written time.Time
+	copies  map[uint64]uint64
 
 	// Of the committer.
 	last uint64 // the broker's sequence of the last pack
@@ -35,11 +40,16 @@ type waiting struct {
 	line   *Line
 	part   part
 	urgent bool
+	first  uint64          // pack of the record's first part, once that is in
 	done   func(At, error) // of the last part
 }
 
-// indexed is where a pack is at the broker: of one in indexEvery.
-type indexed struct{ number, sequence uint64 }
+// indexed is where a pack is at the broker: of one in indexEvery, and oftener
+// where records are kept for a time.
+type indexed struct {
+	number, sequence uint64
+	at               time.Time
+}
 
 const indexEvery = 16
 
@@ -48,7 +58,7 @@ const maxQueued = 64 << 20
 
 func newPartition(j *Journal, i int) *partition {
 	return &partition{
-		j: j, index: i, subject: subject(i), lines: map[uint64]*Line{},
+		j: j, index: i, subject: subject(i), lines: map[uint64]*Line{}, copies: map[uint64]uint64{},
 		wake: make(chan struct{}, 1), idle: make(chan struct{}), pack: pack{first: 1},
 	}
 }
@@ -216,7 +226,7 @@ func (p *partition) serve(batch []waiting) {
 	p.settled(nil, len(kept))
 	for _, w := range kept {
 		if w.done != nil {
-			w.done(At{p.pack.number, w.part.number}, nil)
+			w.done(At{p.pack.number, w.part.number, w.first}, nil)
 		}
 	}
 }

@@ -42,6 +42,7 @@ func purgeBefore(subject string, sequence uint64) []jetstream.StreamPurgeOpt {
 // reader takes the packs of a journal in order.
 type reader struct {
 	j     *Journal
+	fetch func(sequence uint64) ([]byte, time.Time, error) // a message at the broker
 	take  func(Record) error
 	found Found
 	parts []reading
@@ -71,7 +72,10 @@ func (j *Journal) read(ctx context.Context, st jetstream.Stream, info *jetstream
 	}
 	r.found.Bytes = int64(info.State.Bytes)
 	if info.State.Msgs > 0 {
-		if err := r.all(ctx, st); err != nil {
+		if err := r.copies(ctx, st); err != nil {
+			return nil, err
+		}
+		if err := messages(ctx, st, jetstream.OrderedConsumerConfig{DeliverPolicy: jetstream.DeliverAllPolicy}, r.message); err != nil {
 			return nil, err
 		}
 	}
@@ -109,11 +113,23 @@ func (r *reader) lost(partition int, from, to uint64) {
 	r.damaged(Damage{Place{Partition: partition}, from, to, why})
 }
 
-// all reads the stream's messages in their order.
-func (r *reader) all(ctx context.Context, st jetstream.Stream) error {
-	c, err := st.OrderedConsumer(ctx, jetstream.OrderedConsumerConfig{DeliverPolicy: jetstream.DeliverAllPolicy})
+// message is one of the broker's.
+type message struct {
+	subject  string
+	sequence uint64
+	at       time.Time
+	data     []byte
+}
+
+// messages reads a stream's messages in their order.
+func messages(ctx context.Context, st jetstream.Stream, cfg jetstream.OrderedConsumerConfig, take func(message) error) error {
+	c, err := st.OrderedConsumer(ctx, cfg)
 	if err != nil {
 		return fmt.Errorf("journal: reading: %w", err)
+	}
+	if c.CachedInfo().NumPending == 0 {
+		_ = st.DeleteConsumer(ctx, c.CachedInfo().Name) // or it ends by itself
+		return nil
 	}
 	messages, err := c.Messages(jetstream.PullMaxMessages(512))
 	if err != nil {
@@ -134,7 +150,7 @@ func (r *reader) all(ctx context.Context, st jetstream.Stream) error {
 		if err != nil {
 			return fmt.Errorf("journal: reading: %w", err)
 		}
-		if err := r.message(m.Subject(), meta.Sequence.Stream, m.Data()); err != nil {
+		if err := take(message{m.Subject(), meta.Sequence.Stream, meta.Timestamp, m.Data()}); err != nil {
 			return err
 		}
 		if meta.NumPending == 0 {
@@ -143,29 +159,41 @@ func (r *reader) all(ctx context.Context, st jetstream.Stream) error {
 	}
 }
 
-func (r *reader) message(subj string, sequence uint64, data []byte) error {
+func (r *reader) message(m message) error {
 	for i, p := range r.j.parts {
-		if p.subject == subj {
-			return r.pack(i, p, sequence, data)
+		switch m.subject {
+		case copySubject(i):
+			return nil // taken in the place of the one that it stands for
+		case p.subject:
+			p.last = m.sequence
+			return r.pack(i, p, m)
 		}
 	}
-	return fmt.Errorf("journal: the stream %s has a message of %q, which is none of its partitions: it is not a journal of this program", streamName, subj)
+	return fmt.Errorf("journal: the stream %s has a message of %q, which is none of its partitions: it is not a journal of this program", streamName, m.subject)
 }
 
 // pack takes one pack. A damaged one is as if it was missing, but for the
-// partition's last sequence.
-func (r *reader) pack(i int, p *partition, sequence uint64, data []byte) error {
+// partition's last sequence. One that has a copy is what the copy is.
+func (r *reader) pack(i int, p *partition, m message) error {
 	var next pack
-	p.last = sequence
 	st := &r.parts[i]
-	if err := next.read(data); errors.Is(err, errOther) {
-		return fmt.Errorf("journal: partition %d, message %d: %w: use the version that wrote it", i+1, sequence, err)
+	if err := next.read(m.data); errors.Is(err, errOther) {
+		return fmt.Errorf("journal: partition %d, message %d: %w: use the version that wrote it", i+1, m.sequence, err)
 	} else if err != nil {
-		st.unread, st.why = st.unread+1, fmt.Sprintf("message %d is damaged: %v", sequence, err)
+		st.unread, st.why = st.unread+1, fmt.Sprintf("message %d is damaged: %v", m.sequence, err)
 		return nil
 	}
+	if c, ok := p.copies[next.number]; ok && c != m.sequence {
+		r.j.stale = append(r.j.stale, m.sequence)
+		return r.copied(i, p, next.number)
+	}
+	for _, number := range r.between(p, next.number) {
+		if err := r.copied(i, p, number); err != nil {
+			return err
+		}
+	}
 	if next.number <= p.pack.number {
-		return fmt.Errorf("journal: partition %d, message %d: pack %d comes after pack %d: two servers have written it, or the broker mixed it up; restore it from a copy", i+1, sequence, next.number, p.pack.number)
+		return fmt.Errorf("journal: partition %d, message %d: pack %d comes after pack %d: two servers have written it, or the broker mixed it up; restore it from a copy", i+1, m.sequence, next.number, p.pack.number)
 	}
 	if st.from == 0 {
 		st.from = next.number
@@ -174,10 +202,12 @@ func (r *reader) pack(i int, p *partition, sequence uint64, data []byte) error {
 	}
 	st.first, st.unread, st.why = next.first, 0, ""
 	p.pack = pack{epoch: next.epoch, number: next.number, first: next.first, lines: max(p.pack.lines, next.lines)}
-	p.note(next.number, sequence)
+	if m.subject == p.subject {
+		p.note(next.number, m.sequence, m.at)
+	}
 	r.found.Packs++
 	for k := range next.records {
-		if err := r.part(p, &next.records[k]); err != nil {
+		if err := r.part(p, &next.records[k], m.at); err != nil {
 			return err
 		}
 	}
@@ -185,8 +215,8 @@ func (r *reader) pack(i int, p *partition, sequence uint64, data []byte) error {
 }
 
 // part takes a part of a record, and hands the record on when it is whole.
-func (r *reader) part(p *partition, x *part) error {
-	at := Place{p.index, x.line}
+func (r *reader) part(p *partition, x *part, at time.Time) error {
+	place := Place{p.index, x.line}
 	st := r.parts[p.index].lines[x.line]
 	if st == nil {
 		st = &lineRead{number: x.number - 1}
@@ -194,9 +224,9 @@ func (r *reader) part(p *partition, x *part) error {
 	}
 	switch {
 	case x.number <= st.number:
-		return fmt.Errorf("journal: record %d of %v comes after record %d: restore the journal from a copy", x.number, at, st.number)
+		return fmt.Errorf("journal: record %d of %v comes after record %d: restore the journal from a copy", x.number, place, st.number)
 	case x.number > st.number+1:
-		r.damaged(Damage{at, st.number + 1, x.number - 1, "they are missing"})
+		r.damaged(Damage{place, st.number + 1, x.number - 1, "they are missing"})
 		st.began = false
 	}
 	st.number = x.number
@@ -222,5 +252,5 @@ func (r *reader) part(p *partition, x *part) error {
 	data := st.data
 	st.began, st.data = false, nil
 	r.found.Records++
-	return r.take(Record{Kind: x.kind, Place: at, Number: x.number, Pack: p.pack.number, Data: data})
+	return r.take(Record{Kind: x.kind, Place: place, Number: x.number, Pack: p.pack.number, Time: at, Data: data})
 }

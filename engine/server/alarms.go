@@ -90,6 +90,19 @@ func (b *alarmBook) put(a *leadlinev1.AlarmRecord) {
 	}
 }
 
+// forget takes all records of a vehicle out; of alarms that hold the owner must
+// be gone.
+func (b *alarmBook) forget(vehicle string) {
+	b.mu.Lock()
+	defer b.mu.Unlock()
+	for n, a := range b.records {
+		if a.GetVehicle() == vehicle {
+			delete(b.records, n)
+			b.cleared = slices.DeleteFunc(b.cleared, func(c uint64) bool { return c == n })
+		}
+	}
+}
+
 // raise begins a record and returns its number.
 func (b *alarmBook) raise(a *leadlinev1.AlarmRecord) uint64 {
 	b.mu.Lock()

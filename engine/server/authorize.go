@@ -28,20 +28,22 @@ type rule struct {
 // what a server does. An administrator reads no positions: nothing of what one
 // does needs them.
 var rules = map[string]rule{
-	leadlinev1.PositionService_Feed_FullMethodName:          {vehicle: own, vehicles: fedVehicle},
-	leadlinev1.PositionService_Where_FullMethodName:         {vehicle: own, dispatcher: all, analyst: all, vehicles: namedVehicles},
-	leadlinev1.PositionService_Follow_FullMethodName:        {vehicle: own, dispatcher: all, analyst: all, vehicles: followedVehicles},
-	leadlinev1.PositionService_Trail_FullMethodName:         {vehicle: own, dispatcher: all, analyst: all, vehicles: namedVehicle},
-	leadlinev1.PositionService_AddSighting_FullMethodName:   {vehicle: own, dispatcher: all, vehicles: namedVehicle},
-	leadlinev1.PositionService_SeeAlarm_FullMethodName:      {dispatcher: all},
-	leadlinev1.PositionService_ListVehicles_FullMethodName:  {dispatcher: all, analyst: all, administrator: all},
-	leadlinev1.PositionService_EndDrive_FullMethodName:      {vehicle: own, administrator: all, vehicles: namedVehicle},
-	leadlinev1.PositionService_ListMaps_FullMethodName:      {vehicle: all, dispatcher: all, analyst: all, administrator: all},
-	leadlinev1.PositionService_DescribeMap_FullMethodName:   {vehicle: all, dispatcher: all, analyst: all, administrator: all},
-	leadlinev1.PositionService_DrawMap_FullMethodName:       {vehicle: all, dispatcher: all, analyst: all, administrator: all},
-	leadlinev1.PositionService_ListSuites_FullMethodName:    {vehicle: all, dispatcher: all, analyst: all, administrator: all},
-	leadlinev1.PositionService_DescribeSuite_FullMethodName: {vehicle: all, dispatcher: all, analyst: all, administrator: all},
-	leadlinev1.PositionService_UploadMap_FullMethodName:     {administrator: all},
+	leadlinev1.PositionService_Feed_FullMethodName:            {vehicle: own, vehicles: fedVehicle},
+	leadlinev1.PositionService_Where_FullMethodName:           {vehicle: own, dispatcher: all, analyst: all, vehicles: namedVehicles},
+	leadlinev1.PositionService_Follow_FullMethodName:          {vehicle: own, dispatcher: all, analyst: all, vehicles: followedVehicles},
+	leadlinev1.PositionService_Trail_FullMethodName:           {vehicle: own, dispatcher: all, analyst: all, vehicles: namedVehicle},
+	leadlinev1.PositionService_AddSighting_FullMethodName:     {vehicle: own, dispatcher: all, vehicles: namedVehicle},
+	leadlinev1.PositionService_SeeAlarm_FullMethodName:        {dispatcher: all},
+	leadlinev1.PositionService_ListVehicles_FullMethodName:    {dispatcher: all, analyst: all, administrator: all},
+	leadlinev1.PositionService_EndDrive_FullMethodName:        {vehicle: own, administrator: all, vehicles: namedVehicle},
+	leadlinev1.PositionService_EraseVehicle_FullMethodName:    {administrator: all},
+	leadlinev1.PositionService_DescribeJournal_FullMethodName: {administrator: all},
+	leadlinev1.PositionService_ListMaps_FullMethodName:        {vehicle: all, dispatcher: all, analyst: all, administrator: all},
+	leadlinev1.PositionService_DescribeMap_FullMethodName:     {vehicle: all, dispatcher: all, analyst: all, administrator: all},
+	leadlinev1.PositionService_DrawMap_FullMethodName:         {vehicle: all, dispatcher: all, analyst: all, administrator: all},
+	leadlinev1.PositionService_ListSuites_FullMethodName:      {vehicle: all, dispatcher: all, analyst: all, administrator: all},
+	leadlinev1.PositionService_DescribeSuite_FullMethodName:   {vehicle: all, dispatcher: all, analyst: all, administrator: all},
+	leadlinev1.PositionService_UploadMap_FullMethodName:       {administrator: all},
 }
 
 // fedVehicle is the vehicle that a stream is opened for. What follows on the

@@ -82,9 +82,13 @@ func (o *owner) checkpoint(done func()) {
 	c.writing, c.since, c.last = true, 0, o.srv.cfg.Now()
 	c.pressed.Store(false)
 	r, line, from := o.rec, o.rec.line, c.taken.Pack
+	alone := !r.busy() // nothing is on its way: what comes is after it
 	r.waiting = append(r.waiting, entry{true, func() { c.writing, c.since = false, c.since-1 }, func(error) { c.writing = false }})
 	line.Append(kindCheckpoint, data, true, func(at journal.At, err error) {
 		if err == nil {
+			if alone {
+				from = at.First
+			}
 			line.Keep(from)
 		}
 		r.arrived(at, err)
@@ -114,15 +118,8 @@ func (c *histories) checkpoint(h *history, r journal.Record) error {
 	wrong := func(err error) error {
 		return fmt.Errorf("journal: record %d of %v, a checkpoint, cannot be read: %w", r.Number, r.Place, err)
 	}
-	if len(r.Data) < 4 {
-		return wrong(errors.New("it is cut off"))
-	}
-	n := int(binary.LittleEndian.Uint32(r.Data))
-	if n > len(r.Data)-4 {
-		return wrong(errors.New("it is cut off"))
-	}
-	check := new(checkpointRecord)
-	if err := json.Unmarshal(r.Data[4:4+n], check); err != nil {
+	check, state, err := checkpointOf(r.Data)
+	if err != nil {
 		return wrong(err)
 	}
 	if h.open == nil {
@@ -130,12 +127,25 @@ func (c *histories) checkpoint(h *history, r journal.Record) error {
 			return wrong(err)
 		}
 	}
-	h.check, h.state = check, slices.Clone(r.Data[4+n:])
+	h.check, h.state = check, slices.Clone(state)
 	if check.Build == c.build || !h.whole {
 		h.records = slices.DeleteFunc(h.records, func(r journal.Record) bool { return r.Number <= check.After })
 		h.whole = false
 	}
 	return nil
+}
+
+// checkpointOf takes a checkpoint apart.
+func checkpointOf(data []byte) (check *checkpointRecord, state []byte, err error) {
+	if len(data) < 4 {
+		return nil, nil, errors.New("it is cut off")
+	}
+	n := int(binary.LittleEndian.Uint32(data))
+	if n > len(data)-4 {
+		return nil, nil, errors.New("it is cut off")
+	}
+	check = new(checkpointRecord)
+	return check, data[4+n:], json.Unmarshal(data[4:4+n], check)
 }
 
 // replay makes a drive's owner: from its checkpoint, if there is one of this
@@ -159,7 +169,7 @@ func (s *Server) replay(h *history, m *mapUse, cfg session.Config, beside *searc
 		return nil, err
 	}
 	o := newOwner(s, h.open, m, sess, beside)
-	o.openedAt, o.streams, o.idleSince = h.opened.OpenedAt, 0, s.cfg.Now()
+	o.openedAt, o.streams, o.idleSince, o.silentSince = h.opened.OpenedAt, 0, s.cfg.Now(), h.lastAt
 	o.recordIn(s.journal.Line(h.place))
 	o.rec.opened = h.opened
 	o.subject.recomputed = h.opened.Build != s.cfg.Build

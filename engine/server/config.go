@@ -37,6 +37,9 @@ type Config struct {
 	// Journal, if set, keeps what comes before it is acknowledged: its Log is
 	// this configuration's.
 	Journal *journal.Options
+	// KeepFor is for how long what was measured is kept at most: older records of
+	// the journal go, and drives that are silent for longer. 0 is without end.
+	KeepFor time.Duration
 	// Build tells builds of this program apart: what another one computed is
 	// computed again.
 	Build string
@@ -240,6 +243,9 @@ func (c *Config) Validate() error {
 		errs = append(errs, c.Uploads.validate()...)
 	} else if len(c.Maps) == 0 {
 		errs = append(errs, errors.New("server: no map: give at least one"))
+	}
+	if c.KeepFor != 0 && c.KeepFor < time.Second {
+		errs = append(errs, fmt.Errorf("server: what was measured is to be kept for %v: give a second or more, or 0", c.KeepFor))
 	}
 	if c.Journal != nil {
 		errs = append(errs, c.Journal.Validate())

@@ -53,6 +53,7 @@ var reasonCodes = map[leadlinev1.Reason]codes.Code{
 	leadlinev1.Reason_REASON_IDENTITY_UNCHECKED: codes.Unavailable,
 	leadlinev1.Reason_REASON_NOT_ALLOWED:        codes.PermissionDenied,
 	leadlinev1.Reason_REASON_TOO_FAST:           codes.ResourceExhausted,
+	leadlinev1.Reason_REASON_ERASED:             codes.Aborted,
 	leadlinev1.Reason_REASON_JOURNAL_FULL:       codes.ResourceExhausted,
 	leadlinev1.Reason_REASON_JOURNAL_DOWN:       codes.Unavailable,
 	leadlinev1.Reason_REASON_JOURNAL_DAMAGED:    codes.DataLoss,

@@ -153,6 +153,25 @@ func (h *hub) forget(sub *subject) {
 	}
 }
 
+// erase takes out what waits for followers of a drive that is gone; that it is
+// over they are told.
+func (h *hub) erase(sub *subject) {
+	h.mu.Lock()
+	defer h.mu.Unlock()
+	sub.latest = nil
+	sub.recent.clear()
+	for _, f := range h.streams {
+		if s := f.slots[sub.vehicle]; s != nil {
+			s.erase(sub)
+		}
+		for i := range f.sent {
+			if s := f.sent[i].slot; s != nil {
+				s.erase(sub)
+			}
+		}
+	}
+}
+
 // present adds what followers ask for beside the latest posterior: on the
 // owner's goroutine, since it reads the session, and once for all who ask the
 // same.

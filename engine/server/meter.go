@@ -147,6 +147,19 @@ func (s *Server) meterJournal() {
 		{"bytes", "Size of the journal.", func(j journal.State) float64 { return float64(j.Bytes) }},
 		{"most_bytes", "Greatest size that the journal may have.", func(j journal.State) float64 { return float64(j.MaxBytes) }},
 		{"free_bytes", "What is free on the journal's disk; -1 if that is not known.", func(j journal.State) float64 { return float64(j.FreeBytes) }},
+		{"oldest_seconds", "When the oldest record of the journal was written, s since 1970; 0 if there is none.", func(j journal.State) float64 {
+			if j.Oldest.IsZero() {
+				return 0
+			}
+			return float64(j.Oldest.UnixNano()) / 1e9
+		}},
+		{"keep_for_seconds", "For how long records are kept at most, s; 0 is without end.", func(j journal.State) float64 { return j.MaxAge.Seconds() }},
+		{"failing", "1 if the journal takes nothing new.", func(j journal.State) float64 {
+			if j.Err != nil {
+				return 1
+			}
+			return 0
+		}},
 		{"records", "Records since the journal was opened.", func(j journal.State) float64 { return float64(j.Records) }},
 		{"refused_records", "Records that were refused since the journal was opened.", func(j journal.State) float64 { return float64(j.Refused) }},
 	} {

@@ -34,6 +34,7 @@ type owner struct {
 	// latest is the latest posterior, nil before the first. It is not changed.
 	latest atomic.Pointer[summary.Posterior]
 	cells  atomic.Int64  // of the belief
+	ageing atomic.Bool   // its trail may hold what is too old
 	pace   *rate.Limiter // of its measurements
 	// subject is the drive as those see it who follow the vehicle.
 	subject *subject
@@ -41,7 +42,10 @@ type owner struct {
 	// Guarded by srv.mu.
 	streams   int // that use it
 	finished  bool
-	idleSince time.Time
+	idleSince time.Time // without a stream, of this server's time
+	// silentSince is when the last measurement may have come, before a restart,
+	// too.
+	silentSince time.Time
 
 	// Of the goroutine.
 	sess       Session
@@ -159,6 +163,7 @@ func (o *owner) run() {
 			o.take(a)
 		case <-o.rec.poke:
 			o.settle()
+			o.ageTrail()
 		case f := <-o.asks:
 			f()
 		case <-o.subject.poke:

@@ -270,6 +270,13 @@ func wrongCalls(t *testing.T) []wrongCall {
 			openRaw(t, conn, &leadlinev1.Open{Header: header("v"), Drive: "e", Replace: true})
 			return saidBy(ends(st))
 		}},
+		{leadlinev1.Reason_REASON_ERASED, "drive vehicle", Config{}, func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
+			st, _ := openRaw(t, conn, d)
+			if _, err := leadlinev1.NewPositionServiceClient(conn).EraseVehicle(limited(t), &leadlinev1.EraseVehicleRequest{Vehicle: "v"}); err != nil {
+				t.Error(err)
+			}
+			return saidBy(ends(st))
+		}},
 		{leadlinev1.Reason_REASON_STOPPING, "", Config{}, func(t *testing.T, s *Server, conn *grpc.ClientConn) said {
 			st, _ := openRaw(t, conn, d)
 			if err := s.Shutdown(limited(t)); err != nil {

@@ -32,6 +32,13 @@ func (r *recent) add(m *leadlinev1.SensorMeasurement, refused *leadlinev1.Refusa
 	r.next = (r.next + 1) % maxRecent
 }
 
+// clear lets go of all.
+func (r *recent) clear() {
+	r.mu.Lock()
+	defer r.mu.Unlock()
+	clear(r.ring[:])
+}
+
 // list returns them, the last one last.
 func (r *recent) list() []*leadlinev1.RecentMeasurement {
 	r.mu.Lock()

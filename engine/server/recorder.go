@@ -28,6 +28,7 @@ const (
 	kindEnd         = 4 // the drive ends
 	kindCheckpoint  = 5 // checkpointRecord and the session
 	kindDropped     = 6 // the drive is given up
+	kindErase       = 7 // in a line of its own: all of a vehicle is to go, whose name it is
 )
 
 // openedRecord is what a drive begins with, in JSON.

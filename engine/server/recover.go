@@ -32,6 +32,9 @@ type history struct {
 	first   uint64 // number of the first record that was there
 	last    uint64
 	dropped bool
+	lastAt  time.Time // when the last record was written, by the broker's clock
+	erase   string    // the line is of no drive: this vehicle is to be erased
+	before  bool      // an erasure that began later takes it
 	damage  []journal.Damage
 	lacking []string // packs of its partition that are missing
 }
@@ -51,8 +54,10 @@ func (c *histories) take(r journal.Record) error {
 		h = &history{place: r.Place, first: r.Number}
 		c.of[r.Place] = h
 	}
-	h.last = r.Number
+	h.last, h.lastAt = r.Number, r.Time
 	switch r.Kind {
+	case kindErase:
+		h.erase = string(r.Data)
 	case kindOpened:
 		var opened openedRecord
 		err := json.Unmarshal(r.Data, &opened)
@@ -101,6 +106,7 @@ func (s *Server) openJournal() error {
 	began := time.Now()
 	o := *s.cfg.Journal
 	o.Log = s.cfg.Log
+	o.MaxAge = s.cfg.KeepFor
 	j, found, err := journal.Open(context.Background(), o, c.take)
 	if err != nil {
 		return err
@@ -119,8 +125,11 @@ func (s *Server) openJournal() error {
 			}
 		}
 	}
+	erasures := c.erasures()
 	for _, h := range c.of {
 		switch {
+		case h.before || h.erase != "":
+			continue
 		case h.dropped:
 			j.Line(h.place).Release()
 			continue
@@ -138,11 +147,36 @@ func (s *Server) openJournal() error {
 	for _, h := range old {
 		s.dropLine(j.Line(h.place))
 	}
+	for _, h := range erasures { // a server has begun and not ended it
+		marker := j.Line(h.place)
+		if marker == nil {
+			continue // another one has taken it
+		}
+		if _, err := s.eraseRecords(context.Background(), h.erase, marker); err != nil {
+			return fmt.Errorf("a vehicle that is to be erased is still in the journal: %w", err)
+		}
+	}
 	s.restoreAll(newest)
 	st := j.State()
 	s.cfg.Log.Info("journal opened", "where", st.Where, "epoch", st.Epoch, "partitions", st.Partitions, "records", found.Records, "bytes", found.Bytes,
 		"drives", len(s.owners), "kept", len(s.kept), "seconds", time.Since(began).Seconds())
 	return nil
+}
+
+// erasures are the lines of erasures that have begun. What they take is marked.
+func (c *histories) erasures() (lines []*history) {
+	for _, e := range c.of {
+		if e.erase == "" {
+			continue
+		}
+		lines = append(lines, e)
+		for _, h := range c.of {
+			if h.open != nil && h.vehicle() == e.erase && h.place.Line < e.place.Line {
+				h.before = true
+			}
+		}
+	}
+	return lines
 }
 
 // restoreAll goes on with drives, several at once.

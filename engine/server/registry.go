@@ -190,6 +190,7 @@ func (s *Server) leave(o *owner) {
 	defer s.mu.Unlock()
 	o.streams--
 	o.idleSince = s.cfg.Now()
+	o.silentSince = o.idleSince
 }
 
 // finish notes that a drive has ended.

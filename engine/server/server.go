@@ -154,6 +154,7 @@ func (s *Server) Serve(l net.Listener) error {
 	var watching sync.WaitGroup
 	watching.Go(s.watchHealth)
 	watching.Go(s.watchLoad)
+	watching.Go(s.watchAge)
 	defer func() { // with the server's end, also where it fails
 		s.drain.Do(func() { close(s.draining) })
 		watching.Wait()

@@ -44,6 +44,16 @@ type slot struct {
 	outdated map[int64]*summary.Posterior
 }
 
+// erase lets go of the posteriors of a drive.
+func (s *slot) erase(sub *subject) {
+	if s.past != nil {
+		s.past.erase(sub)
+	}
+	if s.of == sub {
+		s.queue, s.held, s.stale, s.outdated = nil, nil, 0, nil
+	}
+}
+
 // has reports whether the posterior of a time has been told as it is now.
 func (s *slot) has(t int64) bool {
 	_, told := slices.BinarySearch(s.told, t)

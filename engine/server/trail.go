@@ -70,6 +70,12 @@ func (t *trail) add(p trailPoint) {
 	t.points = slices.Insert(t.points, i, p)
 }
 
+// forget takes out what is older than a time.
+func (t *trail) forget(beforeNS int64) {
+	i, _ := t.find(beforeNS)
+	t.points = slices.Delete(t.points, 0, i)
+}
+
 // Trail says what a vehicle's drive was like so far: see the .proto file.
 func (s *Server) Trail(ctx context.Context, req *leadlinev1.TrailRequest) (*leadlinev1.TrailResponse, error) {
 	if req.GetVehicle() == "" {

@@ -61,6 +61,16 @@ export class Client {
             input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/fleet_pb.js").EndDriveRequest>;
             output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/fleet_pb.js").EndDriveResponse>;
         };
+        eraseVehicle: {
+            methodKind: "unary";
+            input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/fleet_pb.js").EraseVehicleRequest>;
+            output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/fleet_pb.js").EraseVehicleResponse>;
+        };
+        describeJournal: {
+            methodKind: "unary";
+            input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("@bufbuild/protobuf").Message<"leadline.v1.DescribeJournalRequest">>;
+            output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/fleet_pb.js").DescribeJournalResponse>;
+        };
         listMaps: {
             methodKind: "unary";
             input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("@bufbuild/protobuf").Message<"leadline.v1.ListMapsRequest">>;

@@ -383,6 +383,297 @@ func (x *EndDriveResponse) GetClosed() *Closed {
 	return nil
 }
 
+// EraseVehicleRequest erases what is kept of a vehicle.
+type EraseVehicleRequest struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// The vehicle's name. Required.
+	Vehicle       string `protobuf:"bytes,1,opt,name=vehicle,proto3" json:"vehicle,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *EraseVehicleRequest) Reset() {
+	*x = EraseVehicleRequest{}
+	mi := &file_leadline_v1_fleet_proto_msgTypes[5]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *EraseVehicleRequest) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*EraseVehicleRequest) ProtoMessage() {}
+
+func (x *EraseVehicleRequest) ProtoReflect() protoreflect.Message {
+	mi := &file_leadline_v1_fleet_proto_msgTypes[5]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use EraseVehicleRequest.ProtoReflect.Descriptor instead.
+func (*EraseVehicleRequest) Descriptor() ([]byte, []int) {
+	return file_leadline_v1_fleet_proto_rawDescGZIP(), []int{5}
+}
+
+func (x *EraseVehicleRequest) GetVehicle() string {
+	if x != nil {
+		return x.Vehicle
+	}
+	return ""
+}
+
+// EraseVehicleResponse says what has been erased: it is gone, from the journal
+// too, when the answer comes.
+type EraseVehicleResponse struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// How many drives of the vehicle; 0 where nothing was kept of it.
+	Drives uint32 `protobuf:"varint,1,opt,name=drives,proto3" json:"drives,omitempty"`
+	// How many records of the journal.
+	Records       uint64 `protobuf:"varint,2,opt,name=records,proto3" json:"records,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *EraseVehicleResponse) Reset() {
+	*x = EraseVehicleResponse{}
+	mi := &file_leadline_v1_fleet_proto_msgTypes[6]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *EraseVehicleResponse) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*EraseVehicleResponse) ProtoMessage() {}
+
+func (x *EraseVehicleResponse) ProtoReflect() protoreflect.Message {
+	mi := &file_leadline_v1_fleet_proto_msgTypes[6]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use EraseVehicleResponse.ProtoReflect.Descriptor instead.
+func (*EraseVehicleResponse) Descriptor() ([]byte, []int) {
+	return file_leadline_v1_fleet_proto_rawDescGZIP(), []int{6}
+}
+
+func (x *EraseVehicleResponse) GetDrives() uint32 {
+	if x != nil {
+		return x.Drives
+	}
+	return 0
+}
+
+func (x *EraseVehicleResponse) GetRecords() uint64 {
+	if x != nil {
+		return x.Records
+	}
+	return 0
+}
+
+// DescribeJournalRequest asks how the journal is doing.
+type DescribeJournalRequest struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *DescribeJournalRequest) Reset() {
+	*x = DescribeJournalRequest{}
+	mi := &file_leadline_v1_fleet_proto_msgTypes[7]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *DescribeJournalRequest) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*DescribeJournalRequest) ProtoMessage() {}
+
+func (x *DescribeJournalRequest) ProtoReflect() protoreflect.Message {
+	mi := &file_leadline_v1_fleet_proto_msgTypes[7]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use DescribeJournalRequest.ProtoReflect.Descriptor instead.
+func (*DescribeJournalRequest) Descriptor() ([]byte, []int) {
+	return file_leadline_v1_fleet_proto_rawDescGZIP(), []int{7}
+}
+
+// DescribeJournalResponse says how the journal is doing.
+type DescribeJournalResponse struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// Its folder, or the addresses of its broker.
+	Where string `protobuf:"bytes,1,opt,name=where,proto3" json:"where,omitempty"`
+	// How often it has been opened.
+	Epoch uint64 `protobuf:"varint,2,opt,name=epoch,proto3" json:"epoch,omitempty"`
+	// In how many parts the drives are divided.
+	Partitions uint32 `protobuf:"varint,3,opt,name=partitions,proto3" json:"partitions,omitempty"`
+	// Its size, and the greatest that it may have, bytes.
+	Bytes     uint64 `protobuf:"varint,4,opt,name=bytes,proto3" json:"bytes,omitempty"`
+	MostBytes uint64 `protobuf:"varint,5,opt,name=most_bytes,json=mostBytes,proto3" json:"most_bytes,omitempty"`
+	// What is free on its disk, and what of it is to be left free, bytes. Not set
+	// where the disk is a broker's.
+	FreeBytes  *uint64 `protobuf:"varint,6,opt,name=free_bytes,json=freeBytes,proto3,oneof" json:"free_bytes,omitempty"`
+	LeaveBytes *uint64 `protobuf:"varint,7,opt,name=leave_bytes,json=leaveBytes,proto3,oneof" json:"leave_bytes,omitempty"`
+	// Records since it was opened, those of them that were refused, and those that
+	// are not durable yet.
+	Records uint64 `protobuf:"varint,8,opt,name=records,proto3" json:"records,omitempty"`
+	Refused uint64 `protobuf:"varint,9,opt,name=refused,proto3" json:"refused,omitempty"`
+	Waiting uint64 `protobuf:"varint,10,opt,name=waiting,proto3" json:"waiting,omitempty"`
+	// When the oldest record that it holds was written, by the broker's clock, UTC.
+	Oldest *timestamppb.Timestamp `protobuf:"bytes,11,opt,name=oldest,proto3" json:"oldest,omitempty"`
+	// For how long records are kept at most, s; 0 is without end.
+	KeepForS float64 `protobuf:"fixed64,12,opt,name=keep_for_s,json=keepForS,proto3" json:"keep_for_s,omitempty"`
+	// Why it takes no measurements now; empty if it does.
+	Failure       string `protobuf:"bytes,13,opt,name=failure,proto3" json:"failure,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *DescribeJournalResponse) Reset() {
+	*x = DescribeJournalResponse{}
+	mi := &file_leadline_v1_fleet_proto_msgTypes[8]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *DescribeJournalResponse) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*DescribeJournalResponse) ProtoMessage() {}
+
+func (x *DescribeJournalResponse) ProtoReflect() protoreflect.Message {
+	mi := &file_leadline_v1_fleet_proto_msgTypes[8]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use DescribeJournalResponse.ProtoReflect.Descriptor instead.
+func (*DescribeJournalResponse) Descriptor() ([]byte, []int) {
+	return file_leadline_v1_fleet_proto_rawDescGZIP(), []int{8}
+}
+
+func (x *DescribeJournalResponse) GetWhere() string {
+	if x != nil {
+		return x.Where
+	}
+	return ""
+}
+
+func (x *DescribeJournalResponse) GetEpoch() uint64 {
+	if x != nil {
+		return x.Epoch
+	}
+	return 0
+}
+
+func (x *DescribeJournalResponse) GetPartitions() uint32 {
+	if x != nil {
+		return x.Partitions
+	}
+	return 0
+}
+
+func (x *DescribeJournalResponse) GetBytes() uint64 {
+	if x != nil {
+		return x.Bytes
+	}
+	return 0
+}
+
+func (x *DescribeJournalResponse) GetMostBytes() uint64 {
+	if x != nil {
+		return x.MostBytes
+	}
+	return 0
+}
+
+func (x *DescribeJournalResponse) GetFreeBytes() uint64 {
+	if x != nil && x.FreeBytes != nil {
+		return *x.FreeBytes
+	}
+	return 0
+}
+
+func (x *DescribeJournalResponse) GetLeaveBytes() uint64 {
+	if x != nil && x.LeaveBytes != nil {
+		return *x.LeaveBytes
+	}
+	return 0
+}
+
+func (x *DescribeJournalResponse) GetRecords() uint64 {
+	if x != nil {
+		return x.Records
+	}
+	return 0
+}
+
+func (x *DescribeJournalResponse) GetRefused() uint64 {
+	if x != nil {
+		return x.Refused
+	}
+	return 0
+}
+
+func (x *DescribeJournalResponse) GetWaiting() uint64 {
+	if x != nil {
+		return x.Waiting
+	}
+	return 0
+}
+
+func (x *DescribeJournalResponse) GetOldest() *timestamppb.Timestamp {
+	if x != nil {
+		return x.Oldest
+	}
+	return nil
+}
+
+func (x *DescribeJournalResponse) GetKeepForS() float64 {
+	if x != nil {
+		return x.KeepForS
+	}
+	return 0
+}
+
+func (x *DescribeJournalResponse) GetFailure() string {
+	if x != nil {
+		return x.Failure
+	}
+	return ""
+}
+
 var File_leadline_v1_fleet_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_fleet_proto_rawDesc = "" +
@@ -414,7 +705,36 @@ const file_leadline_v1_fleet_proto_rawDesc = "" +
 	"\avehicle\x18\x01 \x01(\tR\avehicle\x12\x14\n" +
 	"\x05drive\x18\x02 \x01(\tR\x05drive\"?\n" +
 	"\x10EndDriveResponse\x12+\n" +
-	"\x06closed\x18\x01 \x01(\v2\x13.leadline.v1.ClosedR\x06closedB'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
+	"\x06closed\x18\x01 \x01(\v2\x13.leadline.v1.ClosedR\x06closed\"/\n" +
+	"\x13EraseVehicleRequest\x12\x18\n" +
+	"\avehicle\x18\x01 \x01(\tR\avehicle\"H\n" +
+	"\x14EraseVehicleResponse\x12\x16\n" +
+	"\x06drives\x18\x01 \x01(\rR\x06drives\x12\x18\n" +
+	"\arecords\x18\x02 \x01(\x04R\arecords\"\x18\n" +
+	"\x16DescribeJournalRequest\"\xbd\x03\n" +
+	"\x17DescribeJournalResponse\x12\x14\n" +
+	"\x05where\x18\x01 \x01(\tR\x05where\x12\x14\n" +
+	"\x05epoch\x18\x02 \x01(\x04R\x05epoch\x12\x1e\n" +
+	"\n" +
+	"partitions\x18\x03 \x01(\rR\n" +
+	"partitions\x12\x14\n" +
+	"\x05bytes\x18\x04 \x01(\x04R\x05bytes\x12\x1d\n" +
+	"\n" +
+	"most_bytes\x18\x05 \x01(\x04R\tmostBytes\x12\"\n" +
+	"\n" +
+	"free_bytes\x18\x06 \x01(\x04H\x00R\tfreeBytes\x88\x01\x01\x12$\n" +
+	"\vleave_bytes\x18\a \x01(\x04H\x01R\n" +
+	"leaveBytes\x88\x01\x01\x12\x18\n" +
+	"\arecords\x18\b \x01(\x04R\arecords\x12\x18\n" +
+	"\arefused\x18\t \x01(\x04R\arefused\x12\x18\n" +
+	"\awaiting\x18\n" +
+	" \x01(\x04R\awaiting\x122\n" +
+	"\x06oldest\x18\v \x01(\v2\x1a.google.protobuf.TimestampR\x06oldest\x12\x1c\n" +
+	"\n" +
+	"keep_for_s\x18\f \x01(\x01R\bkeepForS\x12\x18\n" +
+	"\afailure\x18\r \x01(\tR\afailureB\r\n" +
+	"\v_free_bytesB\x0e\n" +
+	"\f_leave_bytesB'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
 
 var (
 	file_leadline_v1_fleet_proto_rawDescOnce sync.Once
@@ -428,28 +748,33 @@ func file_leadline_v1_fleet_proto_rawDescGZIP() []byte {
 	return file_leadline_v1_fleet_proto_rawDescData
 }
 
-var file_leadline_v1_fleet_proto_msgTypes = make([]protoimpl.MessageInfo, 5)
+var file_leadline_v1_fleet_proto_msgTypes = make([]protoimpl.MessageInfo, 9)
 var file_leadline_v1_fleet_proto_goTypes = []any{
-	(*ListVehiclesRequest)(nil),   // 0: leadline.v1.ListVehiclesRequest
-	(*ListVehiclesResponse)(nil),  // 1: leadline.v1.ListVehiclesResponse
-	(*Vehicle)(nil),               // 2: leadline.v1.Vehicle
-	(*EndDriveRequest)(nil),       // 3: leadline.v1.EndDriveRequest
-	(*EndDriveResponse)(nil),      // 4: leadline.v1.EndDriveResponse
-	(Status)(0),                   // 5: leadline.v1.Status
-	(*timestamppb.Timestamp)(nil), // 6: google.protobuf.Timestamp
-	(*Closed)(nil),                // 7: leadline.v1.Closed
+	(*ListVehiclesRequest)(nil),     // 0: leadline.v1.ListVehiclesRequest
+	(*ListVehiclesResponse)(nil),    // 1: leadline.v1.ListVehiclesResponse
+	(*Vehicle)(nil),                 // 2: leadline.v1.Vehicle
+	(*EndDriveRequest)(nil),         // 3: leadline.v1.EndDriveRequest
+	(*EndDriveResponse)(nil),        // 4: leadline.v1.EndDriveResponse
+	(*EraseVehicleRequest)(nil),     // 5: leadline.v1.EraseVehicleRequest
+	(*EraseVehicleResponse)(nil),    // 6: leadline.v1.EraseVehicleResponse
+	(*DescribeJournalRequest)(nil),  // 7: leadline.v1.DescribeJournalRequest
+	(*DescribeJournalResponse)(nil), // 8: leadline.v1.DescribeJournalResponse
+	(Status)(0),                     // 9: leadline.v1.Status
+	(*timestamppb.Timestamp)(nil),   // 10: google.protobuf.Timestamp
+	(*Closed)(nil),                  // 11: leadline.v1.Closed
 }
 var file_leadline_v1_fleet_proto_depIdxs = []int32{
-	2, // 0: leadline.v1.ListVehiclesResponse.vehicles:type_name -> leadline.v1.Vehicle
-	5, // 1: leadline.v1.Vehicle.status:type_name -> leadline.v1.Status
-	6, // 2: leadline.v1.Vehicle.time:type_name -> google.protobuf.Timestamp
-	6, // 3: leadline.v1.Vehicle.opened_at:type_name -> google.protobuf.Timestamp
-	7, // 4: leadline.v1.EndDriveResponse.closed:type_name -> leadline.v1.Closed
-	5, // [5:5] is the sub-list for method output_type
-	5, // [5:5] is the sub-list for method input_type
-	5, // [5:5] is the sub-list for extension type_name
-	5, // [5:5] is the sub-list for extension extendee
-	0, // [0:5] is the sub-list for field type_name
+	2,  // 0: leadline.v1.ListVehiclesResponse.vehicles:type_name -> leadline.v1.Vehicle
+	9,  // 1: leadline.v1.Vehicle.status:type_name -> leadline.v1.Status
+	10, // 2: leadline.v1.Vehicle.time:type_name -> google.protobuf.Timestamp
+	10, // 3: leadline.v1.Vehicle.opened_at:type_name -> google.protobuf.Timestamp
+	11, // 4: leadline.v1.EndDriveResponse.closed:type_name -> leadline.v1.Closed
+	10, // 5: leadline.v1.DescribeJournalResponse.oldest:type_name -> google.protobuf.Timestamp
+	6,  // [6:6] is the sub-list for method output_type
+	6,  // [6:6] is the sub-list for method input_type
+	6,  // [6:6] is the sub-list for extension type_name
+	6,  // [6:6] is the sub-list for extension extendee
+	0,  // [0:6] is the sub-list for field type_name
 }
 
 func init() { file_leadline_v1_fleet_proto_init() }
@@ -459,13 +784,14 @@ func file_leadline_v1_fleet_proto_init() {
 	}
 	file_leadline_v1_feed_proto_init()
 	file_leadline_v1_posterior_proto_init()
+	file_leadline_v1_fleet_proto_msgTypes[8].OneofWrappers = []any{}
 	type x struct{}
 	out := protoimpl.TypeBuilder{
 		File: protoimpl.DescBuilder{
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_leadline_v1_fleet_proto_rawDesc), len(file_leadline_v1_fleet_proto_rawDesc)),
 			NumEnums:      0,
-			NumMessages:   5,
+			NumMessages:   9,
 			NumExtensions: 0,
 			NumServices:   0,
 		},

@@ -109,6 +109,9 @@ const (
 	// It is more than a limit on rates allows: try again after the time in the
 	// error's google.rpc.RetryInfo. RESOURCE_EXHAUSTED.
 	Reason_REASON_TOO_FAST Reason = 47
+	// An administrator has erased what was kept of the vehicle, its drive with it.
+	// ABORTED.
+	Reason_REASON_ERASED Reason = 48
 	// There is no room to keep measurements, on the disk or within the journal's
 	// bound: send again later what was not acknowledged. RESOURCE_EXHAUSTED.
 	Reason_REASON_JOURNAL_FULL Reason = 50
@@ -158,6 +161,7 @@ var (
 		45: "REASON_IDENTITY_UNCHECKED",
 		46: "REASON_NOT_ALLOWED",
 		47: "REASON_TOO_FAST",
+		48: "REASON_ERASED",
 		50: "REASON_JOURNAL_FULL",
 		51: "REASON_JOURNAL_DOWN",
 		52: "REASON_JOURNAL_DAMAGED",
@@ -198,6 +202,7 @@ var (
 		"REASON_IDENTITY_UNCHECKED": 45,
 		"REASON_NOT_ALLOWED":        46,
 		"REASON_TOO_FAST":           47,
+		"REASON_ERASED":             48,
 		"REASON_JOURNAL_FULL":       50,
 		"REASON_JOURNAL_DOWN":       51,
 		"REASON_JOURNAL_DAMAGED":    52,
@@ -292,7 +297,7 @@ const file_leadline_v1_reason_proto_rawDesc = "" +
 	"\x18leadline/v1/reason.proto\x12\vleadline.v1\"P\n" +
 	"\aFailure\x12+\n" +
 	"\x06reason\x18\x01 \x01(\x0e2\x13.leadline.v1.ReasonR\x06reason\x12\x18\n" +
-	"\amessage\x18\x02 \x01(\tR\amessage*\x96\a\n" +
+	"\amessage\x18\x02 \x01(\tR\amessage*\xa9\a\n" +
 	"\x06Reason\x12\x16\n" +
 	"\x12REASON_UNSPECIFIED\x10\x00\x12\x13\n" +
 	"\x0fREASON_UNUSABLE\x10\x01\x12\x16\n" +
@@ -328,7 +333,8 @@ const file_leadline_v1_reason_proto_rawDesc = "" +
 	"\x17REASON_IDENTITY_EXPIRED\x10,\x12\x1d\n" +
 	"\x19REASON_IDENTITY_UNCHECKED\x10-\x12\x16\n" +
 	"\x12REASON_NOT_ALLOWED\x10.\x12\x13\n" +
-	"\x0fREASON_TOO_FAST\x10/\x12\x17\n" +
+	"\x0fREASON_TOO_FAST\x10/\x12\x11\n" +
+	"\rREASON_ERASED\x100\x12\x17\n" +
 	"\x13REASON_JOURNAL_FULL\x102\x12\x17\n" +
 	"\x13REASON_JOURNAL_DOWN\x103\x12\x1a\n" +
 	"\x16REASON_JOURNAL_DAMAGED\x104B'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"

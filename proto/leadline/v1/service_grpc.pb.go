@@ -19,20 +19,22 @@ import (
 const _ = grpc.SupportPackageIsVersion9
 
 const (
-	PositionService_Feed_FullMethodName          = "/leadline.v1.PositionService/Feed"
-	PositionService_Where_FullMethodName         = "/leadline.v1.PositionService/Where"
-	PositionService_Follow_FullMethodName        = "/leadline.v1.PositionService/Follow"
-	PositionService_Trail_FullMethodName         = "/leadline.v1.PositionService/Trail"
-	PositionService_AddSighting_FullMethodName   = "/leadline.v1.PositionService/AddSighting"
-	PositionService_SeeAlarm_FullMethodName      = "/leadline.v1.PositionService/SeeAlarm"
-	PositionService_ListVehicles_FullMethodName  = "/leadline.v1.PositionService/ListVehicles"
-	PositionService_EndDrive_FullMethodName      = "/leadline.v1.PositionService/EndDrive"
-	PositionService_ListMaps_FullMethodName      = "/leadline.v1.PositionService/ListMaps"
-	PositionService_DescribeMap_FullMethodName   = "/leadline.v1.PositionService/DescribeMap"
-	PositionService_DrawMap_FullMethodName       = "/leadline.v1.PositionService/DrawMap"
-	PositionService_ListSuites_FullMethodName    = "/leadline.v1.PositionService/ListSuites"
-	PositionService_DescribeSuite_FullMethodName = "/leadline.v1.PositionService/DescribeSuite"
-	PositionService_UploadMap_FullMethodName     = "/leadline.v1.PositionService/UploadMap"
+	PositionService_Feed_FullMethodName            = "/leadline.v1.PositionService/Feed"
+	PositionService_Where_FullMethodName           = "/leadline.v1.PositionService/Where"
+	PositionService_Follow_FullMethodName          = "/leadline.v1.PositionService/Follow"
+	PositionService_Trail_FullMethodName           = "/leadline.v1.PositionService/Trail"
+	PositionService_AddSighting_FullMethodName     = "/leadline.v1.PositionService/AddSighting"
+	PositionService_SeeAlarm_FullMethodName        = "/leadline.v1.PositionService/SeeAlarm"
+	PositionService_ListVehicles_FullMethodName    = "/leadline.v1.PositionService/ListVehicles"
+	PositionService_EndDrive_FullMethodName        = "/leadline.v1.PositionService/EndDrive"
+	PositionService_EraseVehicle_FullMethodName    = "/leadline.v1.PositionService/EraseVehicle"
+	PositionService_DescribeJournal_FullMethodName = "/leadline.v1.PositionService/DescribeJournal"
+	PositionService_ListMaps_FullMethodName        = "/leadline.v1.PositionService/ListMaps"
+	PositionService_DescribeMap_FullMethodName     = "/leadline.v1.PositionService/DescribeMap"
+	PositionService_DrawMap_FullMethodName         = "/leadline.v1.PositionService/DrawMap"
+	PositionService_ListSuites_FullMethodName      = "/leadline.v1.PositionService/ListSuites"
+	PositionService_DescribeSuite_FullMethodName   = "/leadline.v1.PositionService/DescribeSuite"
+	PositionService_UploadMap_FullMethodName       = "/leadline.v1.PositionService/UploadMap"
 )
 
 // PositionServiceClient is the client API for PositionService service.
@@ -67,6 +69,11 @@ type PositionServiceClient interface {
 	ListVehicles(ctx context.Context, in *ListVehiclesRequest, opts ...grpc.CallOption) (*ListVehiclesResponse, error)
 	// EndDrive ends a drive that its vehicle will not end.
 	EndDrive(ctx context.Context, in *EndDriveRequest, opts ...grpc.CallOption) (*EndDriveResponse, error)
+	// EraseVehicle erases what is kept of a vehicle: its drive is given up, and
+	// its records are overwritten in the journal.
+	EraseVehicle(ctx context.Context, in *EraseVehicleRequest, opts ...grpc.CallOption) (*EraseVehicleResponse, error)
+	// DescribeJournal says how the journal is doing, where there is one.
+	DescribeJournal(ctx context.Context, in *DescribeJournalRequest, opts ...grpc.CallOption) (*DescribeJournalResponse, error)
 	// ListMaps says which maps drives may use.
 	ListMaps(ctx context.Context, in *ListMapsRequest, opts ...grpc.CallOption) (*ListMapsResponse, error)
 	// DescribeMap says what one of them is.
@@ -181,6 +188,26 @@ func (c *positionServiceClient) EndDrive(ctx context.Context, in *EndDriveReques
 	return out, nil
 }
 
+func (c *positionServiceClient) EraseVehicle(ctx context.Context, in *EraseVehicleRequest, opts ...grpc.CallOption) (*EraseVehicleResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(EraseVehicleResponse)
+	err := c.cc.Invoke(ctx, PositionService_EraseVehicle_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *positionServiceClient) DescribeJournal(ctx context.Context, in *DescribeJournalRequest, opts ...grpc.CallOption) (*DescribeJournalResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(DescribeJournalResponse)
+	err := c.cc.Invoke(ctx, PositionService_DescribeJournal_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
 func (c *positionServiceClient) ListMaps(ctx context.Context, in *ListMapsRequest, opts ...grpc.CallOption) (*ListMapsResponse, error) {
 	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
 	out := new(ListMapsResponse)
@@ -276,6 +303,11 @@ type PositionServiceServer interface {
 	ListVehicles(context.Context, *ListVehiclesRequest) (*ListVehiclesResponse, error)
 	// EndDrive ends a drive that its vehicle will not end.
 	EndDrive(context.Context, *EndDriveRequest) (*EndDriveResponse, error)
+	// EraseVehicle erases what is kept of a vehicle: its drive is given up, and
+	// its records are overwritten in the journal.
+	EraseVehicle(context.Context, *EraseVehicleRequest) (*EraseVehicleResponse, error)
+	// DescribeJournal says how the journal is doing, where there is one.
+	DescribeJournal(context.Context, *DescribeJournalRequest) (*DescribeJournalResponse, error)
 	// ListMaps says which maps drives may use.
 	ListMaps(context.Context, *ListMapsRequest) (*ListMapsResponse, error)
 	// DescribeMap says what one of them is.
@@ -321,6 +353,12 @@ func (UnimplementedPositionServiceServer) ListVehicles(context.Context, *ListVeh
 }
 func (UnimplementedPositionServiceServer) EndDrive(context.Context, *EndDriveRequest) (*EndDriveResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method EndDrive not implemented")
+}
+func (UnimplementedPositionServiceServer) EraseVehicle(context.Context, *EraseVehicleRequest) (*EraseVehicleResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method EraseVehicle not implemented")
+}
+func (UnimplementedPositionServiceServer) DescribeJournal(context.Context, *DescribeJournalRequest) (*DescribeJournalResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method DescribeJournal not implemented")
 }
 func (UnimplementedPositionServiceServer) ListMaps(context.Context, *ListMapsRequest) (*ListMapsResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method ListMaps not implemented")
@@ -487,6 +525,42 @@ func _PositionService_EndDrive_Handler(srv interface{}, ctx context.Context, dec
 	return interceptor(ctx, in, info, handler)
 }
 
+func _PositionService_EraseVehicle_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(EraseVehicleRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).EraseVehicle(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_EraseVehicle_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).EraseVehicle(ctx, req.(*EraseVehicleRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _PositionService_DescribeJournal_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(DescribeJournalRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).DescribeJournal(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_DescribeJournal_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).DescribeJournal(ctx, req.(*DescribeJournalRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
 func _PositionService_ListMaps_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
 	in := new(ListMapsRequest)
 	if err := dec(in); err != nil {
@@ -614,6 +688,14 @@ var PositionService_ServiceDesc = grpc.ServiceDesc{
 		{
 			MethodName: "EndDrive",
 			Handler:    _PositionService_EndDrive_Handler,
+		},
+		{
+			MethodName: "EraseVehicle",
+			Handler:    _PositionService_EraseVehicle_Handler,
+		},
+		{
+			MethodName: "DescribeJournal",
+			Handler:    _PositionService_DescribeJournal_Handler,
 		},
 		{
 			MethodName: "ListMaps",

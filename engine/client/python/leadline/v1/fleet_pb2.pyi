@@ -8,6 +8,40 @@ from typing import ClassVar as _ClassVar, Iterable as _Iterable, Mapping as _Map
 
 DESCRIPTOR: _descriptor.FileDescriptor
 
+class DescribeJournalRequest(_message.Message):
+    __slots__ = []
+    def __init__(self) -> None: ...
+
+class DescribeJournalResponse(_message.Message):
+    __slots__ = ["bytes", "epoch", "failure", "free_bytes", "keep_for_s", "leave_bytes", "most_bytes", "oldest", "partitions", "records", "refused", "waiting", "where"]
+    BYTES_FIELD_NUMBER: _ClassVar[int]
+    EPOCH_FIELD_NUMBER: _ClassVar[int]
+    FAILURE_FIELD_NUMBER: _ClassVar[int]
+    FREE_BYTES_FIELD_NUMBER: _ClassVar[int]
+    KEEP_FOR_S_FIELD_NUMBER: _ClassVar[int]
+    LEAVE_BYTES_FIELD_NUMBER: _ClassVar[int]
+    MOST_BYTES_FIELD_NUMBER: _ClassVar[int]
+    OLDEST_FIELD_NUMBER: _ClassVar[int]
+    PARTITIONS_FIELD_NUMBER: _ClassVar[int]
+    RECORDS_FIELD_NUMBER: _ClassVar[int]
+    REFUSED_FIELD_NUMBER: _ClassVar[int]
+    WAITING_FIELD_NUMBER: _ClassVar[int]
+    WHERE_FIELD_NUMBER: _ClassVar[int]
+    bytes: int
+    epoch: int
+    failure: str
+    free_bytes: int
+    keep_for_s: float
+    leave_bytes: int
+    most_bytes: int
+    oldest: _timestamp_pb2.Timestamp
+    partitions: int
+    records: int
+    refused: int
+    waiting: int
+    where: str
+    def __init__(self, where: _Optional[str] = ..., epoch: _Optional[int] = ..., partitions: _Optional[int] = ..., bytes: _Optional[int] = ..., most_bytes: _Optional[int] = ..., free_bytes: _Optional[int] = ..., leave_bytes: _Optional[int] = ..., records: _Optional[int] = ..., refused: _Optional[int] = ..., waiting: _Optional[int] = ..., oldest: _Optional[_Union[_timestamp_pb2.Timestamp, _Mapping]] = ..., keep_for_s: _Optional[float] = ..., failure: _Optional[str] = ...) -> None: ...
+
 class EndDriveRequest(_message.Message):
     __slots__ = ["drive", "vehicle"]
     DRIVE_FIELD_NUMBER: _ClassVar[int]
@@ -21,6 +55,20 @@ class EndDriveResponse(_message.Message):
     CLOSED_FIELD_NUMBER: _ClassVar[int]
     closed: _feed_pb2.Closed
     def __init__(self, closed: _Optional[_Union[_feed_pb2.Closed, _Mapping]] = ...) -> None: ...
+
+class EraseVehicleRequest(_message.Message):
+    __slots__ = ["vehicle"]
+    VEHICLE_FIELD_NUMBER: _ClassVar[int]
+    vehicle: str
+    def __init__(self, vehicle: _Optional[str] = ...) -> None: ...
+
+class EraseVehicleResponse(_message.Message):
+    __slots__ = ["drives", "records"]
+    DRIVES_FIELD_NUMBER: _ClassVar[int]
+    RECORDS_FIELD_NUMBER: _ClassVar[int]
+    drives: int
+    records: int
+    def __init__(self, drives: _Optional[int] = ..., records: _Optional[int] = ...) -> None: ...
 
 class ListVehiclesRequest(_message.Message):
     __slots__ = ["map", "page_size", "page_token"]

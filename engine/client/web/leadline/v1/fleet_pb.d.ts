@@ -210,3 +210,163 @@ export declare type EndDriveResponse = Message<"leadline.v1.EndDriveResponse"> &
  */
 export declare const EndDriveResponseSchema: GenMessage<EndDriveResponse>;
 
+/**
+ * EraseVehicleRequest erases what is kept of a vehicle.
+ *
+ * @generated from message leadline.v1.EraseVehicleRequest
+ */
+export declare type EraseVehicleRequest = Message<"leadline.v1.EraseVehicleRequest"> & {
+  /**
+   * The vehicle's name. Required.
+   *
+   * @generated from field: string vehicle = 1;
+   */
+  vehicle: string;
+};
+
+/**
+ * Describes the message leadline.v1.EraseVehicleRequest.
+ * Use `create(EraseVehicleRequestSchema)` to create a new message.
+ */
+export declare const EraseVehicleRequestSchema: GenMessage<EraseVehicleRequest>;
+
+/**
+ * EraseVehicleResponse says what has been erased: it is gone, from the journal
+ * too, when the answer comes.
+ *
+ * @generated from message leadline.v1.EraseVehicleResponse
+ */
+export declare type EraseVehicleResponse = Message<"leadline.v1.EraseVehicleResponse"> & {
+  /**
+   * How many drives of the vehicle; 0 where nothing was kept of it.
+   *
+   * @generated from field: uint32 drives = 1;
+   */
+  drives: number;
+
+  /**
+   * How many records of the journal.
+   *
+   * @generated from field: uint64 records = 2;
+   */
+  records: bigint;
+};
+
+/**
+ * Describes the message leadline.v1.EraseVehicleResponse.
+ * Use `create(EraseVehicleResponseSchema)` to create a new message.
+ */
+export declare const EraseVehicleResponseSchema: GenMessage<EraseVehicleResponse>;
+
+/**
+ * DescribeJournalRequest asks how the journal is doing.
+ *
+ * @generated from message leadline.v1.DescribeJournalRequest
+ */
+export declare type DescribeJournalRequest = Message<"leadline.v1.DescribeJournalRequest"> & {
+};
+
+/**
+ * Describes the message leadline.v1.DescribeJournalRequest.
+ * Use `create(DescribeJournalRequestSchema)` to create a new message.
+ */
+export declare const DescribeJournalRequestSchema: GenMessage<DescribeJournalRequest>;
+
+/**
+ * DescribeJournalResponse says how the journal is doing.
+ *
+ * @generated from message leadline.v1.DescribeJournalResponse
+ */
+export declare type DescribeJournalResponse = Message<"leadline.v1.DescribeJournalResponse"> & {
+  /**
+   * Its folder, or the addresses of its broker.
+   *
+   * @generated from field: string where = 1;
+   */
+  where: string;
+
+  /**
+   * How often it has been opened.
+   *
+   * @generated from field: uint64 epoch = 2;
+   */
+  epoch: bigint;
+
+  /**
+   * In how many parts the drives are divided.
+   *
+   * @generated from field: uint32 partitions = 3;
+   */
+  partitions: number;
+
+  /**
+   * Its size, and the greatest that it may have, bytes.
+   *
+   * @generated from field: uint64 bytes = 4;
+   */
+  bytes: bigint;
+
+  /**
+   * @generated from field: uint64 most_bytes = 5;
+   */
+  mostBytes: bigint;
+
+  /**
+   * What is free on its disk, and what of it is to be left free, bytes. Not set
+   * where the disk is a broker's.
+   *
+   * @generated from field: optional uint64 free_bytes = 6;
+   */
+  freeBytes?: bigint | undefined;
+
+  /**
+   * @generated from field: optional uint64 leave_bytes = 7;
+   */
+  leaveBytes?: bigint | undefined;
+
+  /**
+   * Records since it was opened, those of them that were refused, and those that
+   * are not durable yet.
+   *
+   * @generated from field: uint64 records = 8;
+   */
+  records: bigint;
+
+  /**
+   * @generated from field: uint64 refused = 9;
+   */
+  refused: bigint;
+
+  /**
+   * @generated from field: uint64 waiting = 10;
+   */
+  waiting: bigint;
+
+  /**
+   * When the oldest record that it holds was written, by the broker's clock, UTC.
+   *
+   * @generated from field: google.protobuf.Timestamp oldest = 11;
+   */
+  oldest?: Timestamp | undefined;
+
+  /**
+   * For how long records are kept at most, s; 0 is without end.
+   *
+   * @generated from field: double keep_for_s = 12;
+   */
+  keepForS: number;
+
+  /**
+   * Why it takes no measurements now; empty if it does.
+   *
+   * @generated from field: string failure = 13;
+   */
+  failure: string;
+};
+
+/**
+ * Describes the message leadline.v1.DescribeJournalResponse.
+ * Use `create(DescribeJournalResponseSchema)` to create a new message.
+ */
+export declare const DescribeJournalResponseSchema: GenMessage<DescribeJournalResponse>;
+

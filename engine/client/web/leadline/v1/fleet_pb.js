@@ -11,7 +11,7 @@ import { file_leadline_v1_posterior } from "./posterior_pb.js";
  * Describes the file leadline/v1/fleet.proto.
  */
 export const file_leadline_v1_fleet = /*@__PURE__*/
-  fileDesc("ChdsZWFkbGluZS92MS9mbGVldC5wcm90bxILbGVhZGxpbmUudjEiSQoTTGlzdFZlaGljbGVzUmVxdWVzdBILCgNtYXAYASABKAkSEQoJcGFnZV9zaXplGAIgASgNEhIKCnBhZ2VfdG9rZW4YAyABKAkiVwoUTGlzdFZlaGljbGVzUmVzcG9uc2USJgoIdmVoaWNsZXMYASADKAsyFC5sZWFkbGluZS52MS5WZWhpY2xlEhcKD25leHRfcGFnZV90b2tlbhgCIAEoCSKsAgoHVmVoaWNsZRIPCgd2ZWhpY2xlGAEgASgJEg0KBWRyaXZlGAIgASgJEgsKA21hcBgDIAEoCRIXCg9tYXBfZmluZ2VycHJpbnQYBCABKAkSDQoFc3VpdGUYBSABKAkSIwoGc3RhdHVzGAYgASgOMhMubGVhZGxpbmUudjEuU3RhdHVzEigKBHRpbWUYByABKAsyGi5nb29nbGUucHJvdG9idWYuVGltZXN0YW1wEg0KBWFnZV9zGAggASgBEi0KCW9wZW5lZF9hdBgJIAEoCzIaLmdvb2dsZS5wcm90b2J1Zi5UaW1lc3RhbXASEQoJY29ubmVjdGVkGAogASgIEg0KBWVuZGVkGAsgASgIEh0KFW5ld2VyX21hcF9maW5nZXJwcmludBgMIAEoCSIxCg9FbmREcml2ZVJlcXVlc3QSDwoHdmVoaWNsZRgBIAEoCRINCgVkcml2ZRgCIAEoCSI3ChBFbmREcml2ZVJlc3BvbnNlEiMKBmNsb3NlZBgBIAEoCzITLmxlYWRsaW5lLnYxLkNsb3NlZEInWiVsZWFkbGluZS9wcm90by9sZWFkbGluZS92MTtsZWFkbGluZXYxYgZwcm90bzM", [file_google_protobuf_timestamp, file_leadline_v1_feed, file_leadline_v1_posterior]);
+  fileDesc("ChdsZWFkbGluZS92MS9mbGVldC5wcm90bxILbGVhZGxpbmUudjEiSQoTTGlzdFZlaGljbGVzUmVxdWVzdBILCgNtYXAYASABKAkSEQoJcGFnZV9zaXplGAIgASgNEhIKCnBhZ2VfdG9rZW4YAyABKAkiVwoUTGlzdFZlaGljbGVzUmVzcG9uc2USJgoIdmVoaWNsZXMYASADKAsyFC5sZWFkbGluZS52MS5WZWhpY2xlEhcKD25leHRfcGFnZV90b2tlbhgCIAEoCSKsAgoHVmVoaWNsZRIPCgd2ZWhpY2xlGAEgASgJEg0KBWRyaXZlGAIgASgJEgsKA21hcBgDIAEoCRIXCg9tYXBfZmluZ2VycHJpbnQYBCABKAkSDQoFc3VpdGUYBSABKAkSIwoGc3RhdHVzGAYgASgOMhMubGVhZGxpbmUudjEuU3RhdHVzEigKBHRpbWUYByABKAsyGi5nb29nbGUucHJvdG9idWYuVGltZXN0YW1wEg0KBWFnZV9zGAggASgBEi0KCW9wZW5lZF9hdBgJIAEoCzIaLmdvb2dsZS5wcm90b2J1Zi5UaW1lc3RhbXASEQoJY29ubmVjdGVkGAogASgIEg0KBWVuZGVkGAsgASgIEh0KFW5ld2VyX21hcF9maW5nZXJwcmludBgMIAEoCSIxCg9FbmREcml2ZVJlcXVlc3QSDwoHdmVoaWNsZRgBIAEoCRINCgVkcml2ZRgCIAEoCSI3ChBFbmREcml2ZVJlc3BvbnNlEiMKBmNsb3NlZBgBIAEoCzITLmxlYWRsaW5lLnYxLkNsb3NlZCImChNFcmFzZVZlaGljbGVSZXF1ZXN0Eg8KB3ZlaGljbGUYASABKAkiNwoURXJhc2VWZWhpY2xlUmVzcG9uc2USDgoGZHJpdmVzGAEgASgNEg8KB3JlY29yZHMYAiABKAQiGAoWRGVzY3JpYmVKb3VybmFsUmVxdWVzdCLEAgoXRGVzY3JpYmVKb3VybmFsUmVzcG9uc2USDQoFd2hlcmUYASABKAkSDQoFZXBvY2gYAiABKAQSEgoKcGFydGl0aW9ucxgDIAEoDRINCgVieXRlcxgEIAEoBBISCgptb3N0X2J5dGVzGAUgASgEEhcKCmZyZWVfYnl0ZXMYBiABKARIAIgBARIYCgtsZWF2ZV9ieXRlcxgHIAEoBEgBiAEBEg8KB3JlY29yZHMYCCABKAQSDwoHcmVmdXNlZBgJIAEoBBIPCgd3YWl0aW5nGAogASgEEioKBm9sZGVzdBgLIAEoCzIaLmdvb2dsZS5wcm90b2J1Zi5UaW1lc3RhbXASEgoKa2VlcF9mb3JfcxgMIAEoARIPCgdmYWlsdXJlGA0gASgJQg0KC19mcmVlX2J5dGVzQg4KDF9sZWF2ZV9ieXRlc0InWiVsZWFkbGluZS9wcm90by9sZWFkbGluZS92MTtsZWFkbGluZXYxYgZwcm90bzM", [file_google_protobuf_timestamp, file_leadline_v1_feed, file_leadline_v1_posterior]);
 
 /**
  * Describes the message leadline.v1.ListVehiclesRequest.
@@ -47,4 +47,32 @@ export const EndDriveRequestSchema = /*@__PURE__*/
  */
 export const EndDriveResponseSchema = /*@__PURE__*/
   messageDesc(file_leadline_v1_fleet, 4);
+
+/**
+ * Describes the message leadline.v1.EraseVehicleRequest.
+ * Use `create(EraseVehicleRequestSchema)` to create a new message.
+ */
+export const EraseVehicleRequestSchema = /*@__PURE__*/
+  messageDesc(file_leadline_v1_fleet, 5);
+
+/**
+ * Describes the message leadline.v1.EraseVehicleResponse.
+ * Use `create(EraseVehicleResponseSchema)` to create a new message.
+ */
+export const EraseVehicleResponseSchema = /*@__PURE__*/
+  messageDesc(file_leadline_v1_fleet, 6);
+
+/**
+ * Describes the message leadline.v1.DescribeJournalRequest.
+ * Use `create(DescribeJournalRequestSchema)` to create a new message.
+ */
+export const DescribeJournalRequestSchema = /*@__PURE__*/
+  messageDesc(file_leadline_v1_fleet, 7);
+
+/**
+ * Describes the message leadline.v1.DescribeJournalResponse.
+ * Use `create(DescribeJournalResponseSchema)` to create a new message.
+ */
+export const DescribeJournalResponseSchema = /*@__PURE__*/
+  messageDesc(file_leadline_v1_fleet, 8);
 

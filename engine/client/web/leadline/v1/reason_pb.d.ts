@@ -300,6 +300,14 @@ export enum Reason {
   TOO_FAST = 47,
 
   /**
+   * An administrator has erased what was kept of the vehicle, its drive with it.
+   * ABORTED.
+   *
+   * @generated from enum value: REASON_ERASED = 48;
+   */
+  ERASED = 48,
+
+  /**
    * There is no room to keep measurements, on the disk or within the journal's
    * bound: send again later what was not acknowledged. RESOURCE_EXHAUSTED.
    *

@@ -8,7 +8,7 @@ import type { WhereRequestSchema, WhereResponseSchema } from "./where_pb.js";
 import type { FollowRequestSchema, FollowResponseSchema } from "./follow_pb.js";
 import type { AddSightingRequestSchema, AddSightingResponseSchema, TrailRequestSchema, TrailResponseSchema } from "./trail_pb.js";
 import type { SeeAlarmRequestSchema, SeeAlarmResponseSchema } from "./alarm_pb.js";
-import type { EndDriveRequestSchema, EndDriveResponseSchema, ListVehiclesRequestSchema, ListVehiclesResponseSchema } from "./fleet_pb.js";
+import type { DescribeJournalRequestSchema, DescribeJournalResponseSchema, EndDriveRequestSchema, EndDriveResponseSchema, EraseVehicleRequestSchema, EraseVehicleResponseSchema, ListVehiclesRequestSchema, ListVehiclesResponseSchema } from "./fleet_pb.js";
 import type { DescribeMapRequestSchema, DescribeMapResponseSchema, DescribeSuiteRequestSchema, DescribeSuiteResponseSchema, ListMapsRequestSchema, ListMapsResponseSchema, ListSuitesRequestSchema, ListSuitesResponseSchema, UploadMapRequestSchema, UploadMapResponseSchema } from "./map_pb.js";
 import type { DrawMapRequestSchema, DrawMapResponseSchema } from "./draw_pb.js";
 
@@ -112,6 +112,27 @@ export declare const PositionService: GenService<{
     methodKind: "unary";
     input: typeof EndDriveRequestSchema;
     output: typeof EndDriveResponseSchema;
+  },
+  /**
+   * EraseVehicle erases what is kept of a vehicle: its drive is given up, and
+   * its records are overwritten in the journal.
+   *
+   * @generated from rpc leadline.v1.PositionService.EraseVehicle
+   */
+  eraseVehicle: {
+    methodKind: "unary";
+    input: typeof EraseVehicleRequestSchema;
+    output: typeof EraseVehicleResponseSchema;
+  },
+  /**
+   * DescribeJournal says how the journal is doing, where there is one.
+   *
+   * @generated from rpc leadline.v1.PositionService.DescribeJournal
+   */
+  describeJournal: {
+    methodKind: "unary";
+    input: typeof DescribeJournalRequestSchema;
+    output: typeof DescribeJournalResponseSchema;
   },
   /**
    * ListMaps says which maps drives may use.
