@@ -1,6 +1,7 @@
 package main
 
 import (
+	"os"
 	"path/filepath"
 	"strings"
 	"testing"
@@ -35,6 +36,22 @@ func TestSweepAndCompare(t *testing.T) {
 	status(exitFailure, `--fail-if "drives == 1" holds`, "compare", a, b, "--fail-if", "drives == 1")
 	status(exitBad, "it ends where", "compare", a, b, "--fail-if", "drives ==")
 	status(exitBad, "holds no results", "compare", dir, b)
+	page, moved := filepath.Join(dir, "report.html"), filepath.Join(dir, "moved.roads.arrow")
+	status(exitDone, "2 runs", "report", out, "-o", page, "--pictures", filepath.Join(dir, "pictures"))
+	text, err := os.ReadFile(page)
+	if err != nil || !strings.Contains(string(text), "roads</text>") || strings.Contains(string(text), "without the map") {
+		t.Errorf("the report has no roads: %v", err)
+	}
+	if err := os.Rename(town, moved); err != nil {
+		t.Fatal(err)
+	}
+	status(exitDone, "Tracks are drawn without the map under them: there is no map file", "report", a, "--json")
+	status(exitDone, `"cautions": []`, "report", a, "--map", moved, "--json")
+	if err := os.Rename(moved, town); err != nil {
+		t.Fatal(err)
+	}
+	status(exitBad, "say what to make", "report", out)
+	status(exitBad, "there is no folder", "report", filepath.Join(dir, "nothing"), "--json")
 	status(exitBad, "vehicle.nonsense", "replay", drive, "--map", town, "--set", "vehicle.nonsense=1")
 	status(exitBad, "is no KEY=VALUE", "replay", drive, "--map", town, "--set", "vehicle")
 	status(exitBad, "give three", "replay", drive, "--map", town, "--truth-offset", "1,2")

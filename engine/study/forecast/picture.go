@@ -49,6 +49,7 @@ const (
 	profileHigh  = 3.2 * vg.Inch
 	mapMost      = 7.5 * vg.Inch
 	leastRadiusM = 0.01
+	reliefCells  = 500 // of the relief's longer side
 )
 
 // Picture draws a forecast as a PNG: the predicted radius along the way over the
@@ -222,7 +223,7 @@ func (f *Forecast) chart(g track.Ground) (p *plot.Plot, wide, high float64, err 
 	lon, lat := g.Frame.Inverse(box.Min).Degrees()
 	p.X.Label.Text, p.Y.Label.Text = fmt.Sprintf("kilometres east of lon %.4f°, lat %.4f°", lon, lat), "kilometres north"
 	if g.Relief != nil {
-		p.Add(plotter.NewImage(track.Relief(g.Relief, box), 0, 0, wide, high))
+		p.Add(plotter.NewImage(track.Relief(g.Relief, box, reliefCells), 0, 0, wide, high))
 	}
 	line := func(xys plotter.XYs, c color.Color, width vg.Length) (*plotter.Line, error) {
 		l, err := plotter.NewLine(xys)

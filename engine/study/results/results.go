@@ -50,6 +50,8 @@ type Run struct {
 	// Set are the setting's changes, KEY=VALUE.
 	Set     []string `json:"set"`
 	HeldOut bool     `json:"held_out"`
+	// Places are the suite's posts and beacons.
+	Places []Place `json:"places"`
 
 	MaxCells    int          `json:"max_cells"`
 	AlertLimitM float64      `json:"alert_limit_m"`
@@ -69,6 +71,13 @@ type Run struct {
 	Stopped string `json:"stopped,omitempty"`
 	// Key sums up all that the posteriors depend on.
 	Key string `json:"key"`
+}
+
+// Place is a post or a beacon, in degrees.
+type Place struct {
+	Name string  `json:"name"`
+	Lon  float64 `json:"lon"`
+	Lat  float64 `json:"lat"`
 }
 
 // Result is a run's folder that was read.

@@ -14,6 +14,7 @@ import (
 
 	"leadline/engine/drivefile"
 	"leadline/engine/filter"
+	"leadline/engine/geo"
 	"leadline/engine/sensor"
 	"leadline/engine/session"
 	"leadline/engine/study/diagnose"
@@ -161,12 +162,22 @@ func (w *work) describe(driveSHA256 string) (results.Run, error) {
 	r := results.Run{
 		Drive: u.drive.Name, DriveFile: u.drive.Path, DriveSHA256: driveSHA256, Vehicle: w.header.Vehicle,
 		Map: u.drive.Map.Path, MapFingerprint: u.drive.Map.Space.Fingerprint(), MapSource: u.drive.Map.Source, MapLicence: u.drive.Map.Licence,
-		Suite: u.drive.SuiteName, SuiteSHA256: hash(yaml), Setting: u.setting.Name, Set: []string{}, HeldOut: u.heldOut,
+		Suite: u.drive.SuiteName, SuiteSHA256: hash(yaml), Setting: u.setting.Name, Set: []string{}, HeldOut: u.heldOut, Places: []results.Place{},
 		MaxCells: u.cells, AlertLimitM: suite.For(dim).Vehicle.AlertLimitM, TruthOffset: j.TruthOffset,
 		Version: j.Version, Program: j.Program, Architecture: runtime.GOARCH, Command: j.Command,
 	}
 	for _, c := range u.setting.Changes {
 		r.Set = append(r.Set, c.String())
+	}
+	place := func(name string, at geo.LonLat) {
+		lon, lat := at.Degrees()
+		r.Places = append(r.Places, results.Place{Name: name, Lon: lon, Lat: lat})
+	}
+	for _, p := range suite.Posts {
+		place(p.ID, p.Position())
+	}
+	for _, b := range suite.Beacons {
+		place(b.ID, b.Position())
 	}
 	key, err := json.Marshal([]any{
 		r.DriveSHA256, r.MapFingerprint, string(yaml), r.MaxCells, r.TruthOffset, j.EstimateTruth, j.HoldOutFixes,

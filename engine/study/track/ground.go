@@ -26,7 +26,7 @@ type Place struct {
 	At   geo.LonLat
 }
 
-// reliefCells is how many cells the relief has at most, a side.
+// reliefCells is how many cells the relief of a track's picture has.
 const reliefCells = 500
 
 // places returns those inside a box.
@@ -81,11 +81,11 @@ func within(xys plotter.XYs, b geo.Box) plotter.XYs {
 	return in
 }
 
-// relief paints heights in light greys, high is light, shaded from the
-// north-west; voids stay white.
-func relief(f geo.Field, b geo.Box) image.Image {
+// Relief paints the heights in a box in light greys, high is light, shaded from the
+// north-west; voids stay white. Its longer side has so many cells.
+func Relief(f geo.Field, b geo.Box, cells int) *image.Gray {
 	wide, high := b.Max.E-b.Min.E, b.Max.N-b.Min.N
-	cell := math.Max(wide, high) / reliefCells
+	cell := math.Max(wide, high) / float64(cells)
 	w, h := max(1, int(wide/cell)), max(1, int(high/cell))
 	rows := make([]geo.Heights, h)
 	e, n := make([]float64, w), make([]float64, w)
@@ -104,7 +104,7 @@ func relief(f geo.Field, b geo.Box) image.Image {
 			}
 		}
 	}
-	img := image.NewRGBA(image.Rect(0, 0, w, h))
+	img := image.NewGray(image.Rect(0, 0, w, h))
 	for y := range rows {
 		for x, m := range rows[y].HeightM {
 			v := 255.0
@@ -118,7 +118,7 @@ func relief(f geo.Field, b geo.Box) image.Image {
 				}
 				v = 170 + 55*tone + 25*shade
 			}
-			img.Set(x, y, color.Gray{Y: uint8(math.Max(0, math.Min(255, v)))})
+			img.SetGray(x, y, color.Gray{Y: uint8(math.Max(0, math.Min(255, v)))})
 		}
 	}
 	return img

@@ -103,7 +103,7 @@ func (t *Track) Picture(w io.Writer, g Ground) error {
 	style(p)
 	wide, high := (box.Max.E-box.Min.E)/1000, (box.Max.N-box.Min.N)/1000
 	if g.Relief != nil {
-		p.Add(plotter.NewImage(relief(g.Relief, box), 0, 0, wide, high))
+		p.Add(plotter.NewImage(Relief(g.Relief, box, reliefCells), 0, 0, wide, high))
 	}
 	add := func(xys plotter.XYs, c color.Color, width vg.Length, dashes ...vg.Length) (*plotter.Line, error) {
 		l, err := plotter.NewLine(xys)
