@@ -49,6 +49,17 @@ func codeWords(page string) map[string]bool {
 	return out
 }
 
+// chapter is a page's part under a heading of the second level.
+func chapter(t *testing.T, page, heading string) string {
+	t.Helper()
+	_, rest, ok := strings.Cut(page, "\n## "+heading+"\n")
+	if !ok {
+		t.Fatalf("README.md has no chapter %q", heading)
+	}
+	body, _, _ := strings.Cut(rest, "\n## ")
+	return body
+}
+
 func wantWords(t *testing.T, page, what string, names []string) {
 	t.Helper()
 	if len(names) == 0 {
@@ -168,15 +179,16 @@ func keys(typ reflect.Type, tag string) (names []string) {
 }
 
 // TestReadmeNames: the reference names every kind of measurement with its
-// fields, every field of a drive record, a posterior and a score, every key of
-// a suite, every status, every reason and every starter.
+// fields, every field of a drive record, a posterior and a score, and every key of
+// a suite, each in its chapter, every status, every reason and every starter.
 func TestReadmeNames(t *testing.T) {
 	page := readPage(t, "README.md")
 	seen := map[protoreflect.FullName]bool{}
-	wantWords(t, page, "field of a drive file", fieldNames((&leadlinev1.DriveRecord{}).ProtoReflect().Descriptor(), seen))
-	wantWords(t, page, "field of a posterior", fieldNames((&leadlinev1.Posterior{}).ProtoReflect().Descriptor(), seen))
+	wantWords(t, chapter(t, page, "Drive files"), "field of a drive file", fieldNames((&leadlinev1.DriveRecord{}).ProtoReflect().Descriptor(), seen))
+	clear(seen)
+	wantWords(t, chapter(t, page, "The posterior"), "field of a posterior", fieldNames((&leadlinev1.Posterior{}).ProtoReflect().Descriptor(), seen))
 	wantWords(t, page, "kind of measurement", sensor.Kinds())
-	wantWords(t, page, "key of a suite", keys(reflect.TypeFor[sensor.Suite](), "yaml"))
+	wantWords(t, chapter(t, page, "Suites"), "key of a suite", keys(reflect.TypeFor[sensor.Suite](), "yaml"))
 	wantWords(t, page, "nuisance", sensor.NuisanceNames())
 	wantWords(t, page, "starter suite", sensor.StarterNames())
 	for _, s := range []summary.Status{summary.Contradicted, summary.OffMap, summary.Located, summary.Ambiguous, summary.Unsure} {
