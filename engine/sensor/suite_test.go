@@ -1,8 +1,11 @@
 package sensor
 
 import (
+	"fmt"
+	"math"
 	"os"
 	"path/filepath"
+	"regexp"
 	"strings"
 	"testing"
 
@@ -10,8 +13,8 @@ import (
 	"leadline/engine/geo"
 )
 
-// Each starter suite parses, is valid, and says of every figure whether it is
-// sourced or practice.
+// Each starter suite parses, is valid, and says of every figure where it comes
+// from, beside it or in the comment right above.
 func TestStarterSuites(t *testing.T) {
 	names := StarterNames()
 	if got := strings.Join(names, " "); got != "low-aircraft roadside-posts survey-craft truck" {
@@ -35,12 +38,83 @@ func TestStarterSuites(t *testing.T) {
 				t.Errorf("%s with defaults for dim %d: %v", name, dim, err)
 			}
 		}
-		if !strings.Contains(string(text), "ractice") {
-			t.Errorf("%s marks no figure as practice", name)
+		if bare := unsourced(string(text)); len(bare) > 0 {
+			t.Errorf("%s says of these figures neither a source nor that they are practice: %q", name, bare)
 		}
 	}
 	if _, ok := StarterText("../suite"); ok {
 		t.Error("a name outside the starters gives a text")
+	}
+}
+
+var (
+	figure = regexp.MustCompile(`^[^#]*[:{][^#a-zA-Z]*[0-9]`)
+	origin = regexp.MustCompile(`practice|Practice|invented|formula|memory|ISO [0-9]|ICAO Annex|IHO S-44|Applied Acoustics`)
+)
+
+// unsourced are the lines of a suite with a figure of no stated origin.
+func unsourced(text string) (bare []string) {
+	above := ""
+	lines := strings.Split(text, "\n")
+	for i, line := range lines {
+		value, comment, _ := strings.Cut(line, "#")
+		if strings.TrimSpace(value) == "" {
+			above += comment
+			continue
+		}
+		if next := strings.TrimLeft(lines[min(i+1, len(lines)-1)], " "); strings.HasPrefix(next, "#") && len(lines[i+1])-len(next) > strings.Index(value, strings.TrimSpace(value)) {
+			comment += next // goes on there, farther in
+		}
+		if figure.MatchString(line) && !origin.MatchString(above+comment) {
+			bare = append(bare, strings.TrimSpace(line))
+		}
+		above = ""
+	}
+	return bare
+}
+
+// TestUnsourced: a figure without an origin is found, wherever others have one.
+func TestUnsourced(t *testing.T) {
+	text := "vehicle:\n  hold_s: 2 # practice\n  alert_limit_m: 25\n  # Practice.\n  max_speed_mps: 40\n  max_turn_dps: 1.0e-3 # fast\n  mounting: {down_m: -3}\n  vertical_datum: \"\" # name it\n"
+	if got := fmt.Sprintf("%q", unsourced(text)); got != `["alert_limit_m: 25" "max_turn_dps: 1.0e-3 # fast" "mounting: {down_m: -3}"]` {
+		t.Error(got)
+	}
+}
+
+// TestSensorFigures: what the starters and the defaults say of sensors lies where
+// it was measured, or where practice has it.
+func TestSensorFigures(t *testing.T) {
+	starter := func(name string) *Suite {
+		text, _ := StarterText(name)
+		s, err := ParseSuite(name, text)
+		if err != nil {
+			t.Fatal(err)
+		}
+		return s
+	}
+	truck, posts := starter("truck"), starter("roadside-posts")
+	sigma := func(s *Suite, sensor, kind, nuisance string) float64 {
+		for _, n := range s.Sensor(sensor, kind).Nuisances {
+			if n.Name == nuisance {
+				return n.Sigma
+			}
+		}
+		return math.NaN()
+	}
+	scale := Default(1).Quantities(1)
+	for _, c := range []struct {
+		source           string
+		got, least, most float64
+	}{
+		{"practice (memory): wheel odometry is good to 0.5 to 2 % of distance", sigma(truck, "odo", KindTravel, NuisanceOdometerScale), 0.005, 0.02},
+		{"the same, where no suite says", math.Sqrt(scale[filter.Index(scale, filter.OdometerScale)].PriorVar), 0.005, 0.02},
+		// To the one digit that is given.
+		{"practice (memory): MEMS gyros 3 to 100 °/h in run", sigma(truck, "gyro", KindTurn, NuisanceGyroBias) * 3600, 2.5, 150},
+		{"Moran, Greenfield & Wilson, Applied Acoustics 68, 2007: small arrays hear vehicles to 2 to 5° at 25 to 60 Hz", posts.Posts[0].SigmaDeg, 2, 5},
+	} {
+		if !(c.got >= c.least && c.got <= c.most) {
+			t.Errorf("%s: %v", c.source, c.got)
+		}
 	}
 }
 
