@@ -24,6 +24,8 @@ func (m Bearing) Check(Time) error {
 // wrapped residual up to a sigma of 15° and by the von Mises density above
 // (type sight). Within four cells of the beacon the exact density serves: a
 // Gaussian half a cell wide then bends the direction by (1/8)² rad, 0.9°.
+// Source: Mardia & Jupp, Directional Statistics, 2000, wrapped normal and von
+// Mises distributions (memory).
 func (m Bearing) likelihood(c *Context, d Sensor) (any, error) {
 	at, err := c.point(m.Beacon.Position, "the beacon")
 	if err != nil {

@@ -10,6 +10,8 @@ import "leadline/engine/geo"
 //
 // which for a circular arc is exact in direction and short in length by
 // TurnRad²/24 of it (the chord), as the instrument gives it.
+// Source: derived from the arc; the form is that of Thrun, Burgard & Fox,
+// Probabilistic Robotics, 2005, chapter 5 (memory).
 type BodyDisplacement struct {
 	Since                     Time
 	ForwardM, RightM          float64

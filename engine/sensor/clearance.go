@@ -24,6 +24,8 @@ func (m Clearance) Check(Time) error {
 // is of, and the altimeter_offset_m of a sensor that describes one (type
 // heights). Where a canopy is in the way, the ground seems higher by anything
 // up to its height.
+// Source: the definition of the two heights; outliers and canopy are Huber's
+// contaminated distribution, Ann. Math. Statist. 35, 1964 (memory).
 func (m Clearance) likelihood(c *Context, d Sensor) any {
 	l := c.heights(d, m.AltitudeM-d.Mounting.DownM, m.ClearanceM, m.SigmaM, d.Mounting.ForwardM, d.Mounting.RightM)
 	l.noise = d.canopied(l.noise)

@@ -5,10 +5,12 @@ import "math"
 // Displacement is the ground-frame displacement since Since in true east and
 // north (inertial, Doppler log), with its covariance (EE, EN, NN).
 //
-// On a plane positions move by the displacement rotated into the frame and
-// spread by the rotated covariance, R C Rᵀ. On roads they move by its
+// On a plane positions move by the displacement rotated into the frame, d' = R d,
+// and spread by the rotated covariance, C' = R C Rᵀ. On roads they move by its
 // component along the road, and the component across it is a measurement of
 // the road's direction (CrossTrack).
+// Source: the linear map of a Gaussian, as in Bar-Shalom, Li & Kirubarajan,
+// Estimation with Applications to Tracking and Navigation.
 type Displacement struct {
 	Since         Time
 	EastM, NorthM float64

@@ -33,6 +33,8 @@ func (p *problems) position(at geo.LonLat) {
 // left out of sigma). On roads they are along and across the road, since the
 // vehicle's distance from the centreline widens only the second:
 // v ~ N(0, diag(σ², σ² + lateral²)). Outliers are flat over a square of 10 km.
+// Source: Huber's contaminated distribution, Ann. Math. Statist. 35, 1964
+// (memory).
 func (m Fix) likelihood(c *Context, d Sensor) (any, error) {
 	z, err := c.point(m.Position, "the fix")
 	if err != nil {

@@ -22,6 +22,8 @@ func (m HeadingFix) Check(Time) error {
 }
 
 // likelihood: z = heading + convergence at the vehicle + v, wrapped.
+// Source: Mardia & Jupp, Directional Statistics, 2000, wrapped normal and von
+// Mises distributions (memory).
 //
 // Where the heading is among the quantities the map does not enter: the
 // heading follows the road by RoadAlignment, once for each 5 m travelled

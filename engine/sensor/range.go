@@ -37,6 +37,7 @@ func (p *problems) beacon(b Beacon) {
 // the beacon, or four cells, the exact density at the Gaussian's mean serves:
 // outside them w ≤ cell/2 bends by less than a thirty-second of a cell.
 // Outliers are flat up to the sensor's largest range.
+// Source: the gradient of a distance; for the scale see lengths.
 func (m Range) likelihood(c *Context, d Sensor) (any, error) {
 	at, err := c.point(m.Beacon.Position, "the beacon")
 	if err != nil {

@@ -63,7 +63,7 @@ func openRing(ring []geo.LonLat) []geo.LonLat {
 // likelihood: p(said | inside) = 1 - mistaken, p(said | outside) = mistaken;
 // with mistaken 0 the outside is impossible. A road that the map does not
 // know is an error; a corner of an area counts by its own place in the frame,
-// edges are straight there.
+// edges are straight there. Source: the law of total probability.
 func (m Sighting) likelihood(c *Context) (any, error) {
 	in, out := kernel.Log(1-m.Mistaken), kernel.Log(m.Mistaken)
 	if m.Road != "" {

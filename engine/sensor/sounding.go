@@ -60,6 +60,8 @@ const maxKeptBeams = 16
 //
 // The scale is that of a vertical way. Rays of slanting beams are refracted, too,
 // which is left out: near the middle of a fan it is of second order.
+// Source: the definition of a depth; the tide among what is estimated as in
+// Anonsen & Hallingstad, 2006.
 //
 // Beams close together see the same error of the map, so they are thinned:
 // from the transducer outwards a beam is kept if it is at least two of the

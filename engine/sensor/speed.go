@@ -38,6 +38,8 @@ func (m Speed) Check(Time) error {
 //
 // Readings closer together than that share their error, so the variance grows
 // by the same amount a second whatever the rate. dt ≤ 0 gives 0.
+// Source: derived, as the variance of a sum of errors that are each constant for
+// correlationS and independent of one another.
 func (m Speed) SigmaM(dt, correlationS float64) float64 {
 	if !(dt > 0) {
 		return 0

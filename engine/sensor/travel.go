@@ -7,6 +7,8 @@ package sensor
 //
 // with s the odometer_scale nuisance where a belief has one: d moved / d s =
 // DistanceM, so that whatever tells the distance observes the scale.
+// Source: Borenstein & Feng, IEEE Trans. Robotics and Automation 12(6), 1996
+// (memory): a wheel of another size is a factor of the distance.
 type Travel struct {
 	Since     Time
 	DistanceM float64

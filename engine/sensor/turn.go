@@ -9,6 +9,7 @@ import "leadline/engine/geo"
 // The slow change of the meridian convergence under a moving vehicle (at 60°
 // latitude 0.016° a kilometre east) is far below any gyro that needs a map
 // and is left out.
+// Source: IEEE Std 952, gyros' angular random walk and bias (memory).
 type Turn struct {
 	Since    Time
 	AngleRad float64
