@@ -31,6 +31,9 @@ func mapRoadsCommand() *cobra.Command {
 			if !(o.Map.UTurnWeight >= 0 && o.Map.UTurnWeight < 1) {
 				return fmt.Errorf("--u-turns is %v: give a probability, 0 or more and below 1", o.Map.UTurnWeight)
 			}
+			if !(o.JoinM >= 0 && o.JoinM <= 50) {
+				return fmt.Errorf("--join is %v: give metres, 0 to 50; 0 joins nothing", o.JoinM)
+			}
 			if o.JoinM == 0 {
 				o.JoinM = -1 // given as 0: join nothing; the default is not 0
 			}

@@ -182,10 +182,26 @@ func plain(err error) error {
 		return errors.New("the line ends within a record")
 	}
 	if m := position.FindStringSubmatch(s); m != nil {
-		return fmt.Errorf("column %s: %s", m[2], s[len(m[0]):])
+		said := s[len(m[0]):]
+		return fmt.Errorf("column %s: %s%s", m[2], said, advice(said))
 	}
 	s = strings.TrimLeft(strings.TrimPrefix(s, "proto:"), " \u00a0")
 	return errors.New(strings.Replace(s, "syntax error ", "", 1))
+}
+
+// advice is what to do about an error of protojson.
+func advice(said string) string {
+	switch {
+	case strings.HasPrefix(said, "unknown field"):
+		return ": the README names those of a record, and under Measurement kinds those of each kind"
+	case strings.HasPrefix(said, "invalid google.protobuf.Timestamp"):
+		return ": give a time of RFC 3339, such as 2030-05-01T12:00:00.5Z"
+	case strings.HasPrefix(said, "error parsing"): // of a oneof
+		return ": give one of header, measurement and truth, and one kind"
+	case strings.HasPrefix(said, "invalid value for"):
+		return ""
+	}
+	return ": a drive file has one record in JSON a line"
 }
 
 // MaxRecords is the most that ReadAll keeps: a day at 100 Hz with truth at
