@@ -98,7 +98,8 @@ func (x *SensorMeasurement) GetMeasurement() *Measurement {
 }
 
 // Measurement is one of the kinds below. Every sigma is a standard deviation
-// and must be positive.
+// and positive; 0 takes the noise that the suite states for the sensor, and
+// without one the measurement is refused.
 type Measurement struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// The kind; exactly one must be set.
@@ -528,7 +529,8 @@ type Displacement struct {
 	EastM float64 `protobuf:"fixed64,2,opt,name=east_m,json=eastM,proto3" json:"east_m,omitempty"`
 	// Towards true north, m.
 	NorthM float64 `protobuf:"fixed64,3,opt,name=north_m,json=northM,proto3" json:"north_m,omitempty"`
-	// Covariance of the two, m². Required, positive definite.
+	// Covariance of the two, m², positive definite. Required; an empty one takes
+	// the suite's noise.
 	Covariance    *Covariance `protobuf:"bytes,4,opt,name=covariance,proto3" json:"covariance,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
@@ -1209,8 +1211,9 @@ func (*Beacon_Position) isBeacon_Place() {}
 
 // Range is a horizontal distance to a beacon (radio, radar or acoustic).
 type Range struct {
-	state  protoimpl.MessageState `protogen:"open.v1"`
-	Beacon *Beacon                `protobuf:"bytes,1,opt,name=beacon,proto3" json:"beacon,omitempty"`
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// The beacon. Required.
+	Beacon *Beacon `protobuf:"bytes,1,opt,name=beacon,proto3" json:"beacon,omitempty"`
 	// Distance, m.
 	RangeM float64 `protobuf:"fixed64,2,opt,name=range_m,json=rangeM,proto3" json:"range_m,omitempty"`
 	// Its standard deviation, m.
@@ -1272,8 +1275,9 @@ func (x *Range) GetSigmaM() float64 {
 
 // Bearing is the direction from the vehicle to a beacon.
 type Bearing struct {
-	state  protoimpl.MessageState `protogen:"open.v1"`
-	Beacon *Beacon                `protobuf:"bytes,1,opt,name=beacon,proto3" json:"beacon,omitempty"`
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// The beacon. Required.
+	Beacon *Beacon `protobuf:"bytes,1,opt,name=beacon,proto3" json:"beacon,omitempty"`
 	// Degrees clockwise from true north at the vehicle.
 	BearingDeg float64 `protobuf:"fixed64,2,opt,name=bearing_deg,json=bearingDeg,proto3" json:"bearing_deg,omitempty"`
 	// Its standard deviation, degrees.

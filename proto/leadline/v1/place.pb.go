@@ -88,8 +88,9 @@ func (x *Position) GetLat() float64 {
 
 // Polygon is an area: its first ring is the outside, the others are holes.
 type Polygon struct {
-	state         protoimpl.MessageState `protogen:"open.v1"`
-	Rings         []*Ring                `protobuf:"bytes,1,rep,name=rings,proto3" json:"rings,omitempty"`
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// The outside first. At least one is required.
+	Rings         []*Ring `protobuf:"bytes,1,rep,name=rings,proto3" json:"rings,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -134,8 +135,9 @@ func (x *Polygon) GetRings() []*Ring {
 // Ring is a closed line; the last point may repeat the first. Its edges are
 // straight in the map's own metric frame.
 type Ring struct {
-	state         protoimpl.MessageState `protogen:"open.v1"`
-	Points        []*Position            `protobuf:"bytes,1,rep,name=points,proto3" json:"points,omitempty"`
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// Its corners in order, at least three.
+	Points        []*Position `protobuf:"bytes,1,rep,name=points,proto3" json:"points,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }

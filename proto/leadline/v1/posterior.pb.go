@@ -161,7 +161,8 @@ type Posterior struct {
 	Map string `protobuf:"bytes,3,opt,name=map,proto3" json:"map,omitempty"`
 	// The map's fingerprint.
 	MapFingerprint string `protobuf:"bytes,4,opt,name=map_fingerprint,json=mapFingerprint,proto3" json:"map_fingerprint,omitempty"`
-	Status         Status `protobuf:"varint,5,opt,name=status,proto3,enum=leadline.v1.Status" json:"status,omitempty"`
+	// How far it may be trusted.
+	Status Status `protobuf:"varint,5,opt,name=status,proto3,enum=leadline.v1.Status" json:"status,omitempty"`
 	// Mean position.
 	Mean *Position `protobuf:"bytes,6,opt,name=mean,proto3" json:"mean,omitempty"`
 	// Covariance of the position about the mean, true east and north, m²; cell
@@ -171,20 +172,20 @@ type Posterior struct {
 	MostProbable *Place `protobuf:"bytes,8,opt,name=most_probable,json=mostProbable,proto3" json:"most_probable,omitempty"`
 	// The heaviest modes, by falling mass.
 	Modes []*Mode `protobuf:"bytes,9,rep,name=modes,proto3" json:"modes,omitempty"`
-	// How many modes there are, those that are not listed included, and the
-	// probability that the others hold.
-	ModeCount uint32  `protobuf:"varint,27,opt,name=mode_count,json=modeCount,proto3" json:"mode_count,omitempty"`
-	ModeRest  float64 `protobuf:"fixed64,28,opt,name=mode_rest,json=modeRest,proto3" json:"mode_rest,omitempty"`
+	// How many modes there are, those that are not listed included.
+	ModeCount uint32 `protobuf:"varint,27,opt,name=mode_count,json=modeCount,proto3" json:"mode_count,omitempty"`
+	// The probability that those hold that are not listed.
+	ModeRest float64 `protobuf:"fixed64,28,opt,name=mode_rest,json=modeRest,proto3" json:"mode_rest,omitempty"`
 	// The vehicle's heading, where it is known.
 	Heading *Direction `protobuf:"bytes,10,opt,name=heading,proto3" json:"heading,omitempty"`
 	// The vehicle's speed, where it is known.
 	Speed *SpeedEstimate `protobuf:"bytes,11,opt,name=speed,proto3" json:"speed,omitempty"`
 	// On roads: the directed edges by falling probability, up to a number.
 	Edges []*EdgeProbability `protobuf:"bytes,12,rep,name=edges,proto3" json:"edges,omitempty"`
-	// How many edges have any probability, and what those hold that are not
-	// listed.
-	EdgeCount uint32  `protobuf:"varint,29,opt,name=edge_count,json=edgeCount,proto3" json:"edge_count,omitempty"`
-	EdgeRest  float64 `protobuf:"fixed64,30,opt,name=edge_rest,json=edgeRest,proto3" json:"edge_rest,omitempty"`
+	// How many edges have any probability.
+	EdgeCount uint32 `protobuf:"varint,29,opt,name=edge_count,json=edgeCount,proto3" json:"edge_count,omitempty"`
+	// The probability that those hold that are not listed.
+	EdgeRest float64 `protobuf:"fixed64,30,opt,name=edge_rest,json=edgeRest,proto3" json:"edge_rest,omitempty"`
 	// Radii about the mean that hold 50, 95 and 99 % of the probability.
 	Radii *Radii `protobuf:"bytes,13,opt,name=radii,proto3" json:"radii,omitempty"`
 	// The smallest regions that hold the asked fractions of the probability.
@@ -824,7 +825,8 @@ type EdgeProbability struct {
 	// The edge's number in the map.
 	Edge uint32 `protobuf:"varint,1,opt,name=edge,proto3" json:"edge,omitempty"`
 	// The road's name, empty if it has none.
-	Name        string  `protobuf:"bytes,2,opt,name=name,proto3" json:"name,omitempty"`
+	Name string `protobuf:"bytes,2,opt,name=name,proto3" json:"name,omitempty"`
+	// Probability of being on it.
 	Probability float64 `protobuf:"fixed64,3,opt,name=probability,proto3" json:"probability,omitempty"`
 	// The same road in the other direction. Not set if there is none.
 	Twin          *uint32 `protobuf:"varint,4,opt,name=twin,proto3,oneof" json:"twin,omitempty"`
@@ -1108,8 +1110,10 @@ type Nuisance struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// Its name, as a suite has it: odometer_scale (true over measured distance,
 	// less 1), gyro_bias_dps, altimeter_offset_m, barometer_offset_m, tide_m,
-	// sound_speed_scale (true over assumed speed, less 1). A bias, an offset or an
-	// error is what was measured less what is true. The heading is not among
+	// sound_speed_scale (true over assumed speed, less 1),
+	// velocity_error_east_mps and velocity_error_north_mps (true east and north),
+	// azimuth_error_deg (true displacement clockwise from the measured one). A
+	// bias, an offset or an error is what was measured less what is true. The heading is not among
 	// them: see Posterior.heading.
 	Name string `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
 	// Mean, in the unit.
@@ -1182,9 +1186,11 @@ func (x *Nuisance) GetUnit() string {
 
 // Evidence is how well one measurement was explained.
 type Evidence struct {
-	state  protoimpl.MessageState `protogen:"open.v1"`
-	Sensor string                 `protobuf:"bytes,1,opt,name=sensor,proto3" json:"sensor,omitempty"`
-	Number uint64                 `protobuf:"varint,2,opt,name=number,proto3" json:"number,omitempty"`
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// The sensor's name; road for the comparison with the road's heading.
+	Sensor string `protobuf:"bytes,1,opt,name=sensor,proto3" json:"sensor,omitempty"`
+	// The measurement's number.
+	Number uint64 `protobuf:"varint,2,opt,name=number,proto3" json:"number,omitempty"`
 	// The measurement's kind, as in Measurement.
 	Kind string `protobuf:"bytes,3,opt,name=kind,proto3" json:"kind,omitempty"`
 	// ln p(measurement | those before it), nats; density in the measurement's
@@ -1265,13 +1271,14 @@ func (x *Evidence) GetWithheld() bool {
 // and ends when as much has spoken for it.
 type Alarm struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
-	Kind  AlarmKind              `protobuf:"varint,1,opt,name=kind,proto3,enum=leadline.v1.AlarmKind" json:"kind,omitempty"`
+	// What it is about.
+	Kind AlarmKind `protobuf:"varint,1,opt,name=kind,proto3,enum=leadline.v1.AlarmKind" json:"kind,omitempty"`
 	// The sensor; empty for all together, which contradict the belief.
 	Sensor string `protobuf:"bytes,2,opt,name=sensor,proto3" json:"sensor,omitempty"`
-	// The kind of its measurements, as in Measurement, and of bearings from posts
-	// the post.
+	// The kind of its measurements, as in Measurement.
 	MeasurementKind string `protobuf:"bytes,3,opt,name=measurement_kind,json=measurementKind,proto3" json:"measurement_kind,omitempty"`
-	Post            string `protobuf:"bytes,4,opt,name=post,proto3" json:"post,omitempty"`
+	// Of bearings from posts the post.
+	Post string `protobuf:"bytes,4,opt,name=post,proto3" json:"post,omitempty"`
 	// When it was raised, UTC.
 	Raised *timestamppb.Timestamp `protobuf:"bytes,5,opt,name=raised,proto3" json:"raised,omitempty"`
 	// Since when there has been evidence of it, UTC.
@@ -1375,12 +1382,13 @@ func (x *Alarm) GetThreshold() float64 {
 // Consistency is how a sensor's measurements agree with what was expected of
 // them, by normal scores: mean 0 and mean square 1 if all is as stated.
 type Consistency struct {
-	state  protoimpl.MessageState `protogen:"open.v1"`
-	Sensor string                 `protobuf:"bytes,1,opt,name=sensor,proto3" json:"sensor,omitempty"`
-	// The kind of its measurements, as in Measurement, and of bearings from posts
-	// the post.
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// The sensor's name.
+	Sensor string `protobuf:"bytes,1,opt,name=sensor,proto3" json:"sensor,omitempty"`
+	// The kind of its measurements, as in Measurement.
 	MeasurementKind string `protobuf:"bytes,2,opt,name=measurement_kind,json=measurementKind,proto3" json:"measurement_kind,omitempty"`
-	Post            string `protobuf:"bytes,3,opt,name=post,proto3" json:"post,omitempty"`
+	// Of bearings from posts the post.
+	Post string `protobuf:"bytes,3,opt,name=post,proto3" json:"post,omitempty"`
 	// How many were compared since the start: not those that share their errors
 	// with the one before.
 	Compared uint64 `protobuf:"varint,4,opt,name=compared,proto3" json:"compared,omitempty"`
@@ -1560,7 +1568,8 @@ func (x *Counts) GetRestart() float64 {
 // comes in their place: a late measurement changed the belief so that it passes
 // those times over.
 type Withdrawn struct {
-	state         protoimpl.MessageState   `protogen:"open.v1"`
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// The times of those posteriors, UTC.
 	Times         []*timestamppb.Timestamp `protobuf:"bytes,1,rep,name=times,proto3" json:"times,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache

@@ -57,7 +57,8 @@ export declare const SensorMeasurementSchema: GenMessage<SensorMeasurement>;
 
 /**
  * Measurement is one of the kinds below. Every sigma is a standard deviation
- * and must be positive.
+ * and positive; 0 takes the noise that the suite states for the sensor, and
+ * without one the measurement is refused.
  *
  * @generated from message leadline.v1.Measurement
  */
@@ -262,7 +263,8 @@ export declare type Displacement = Message<"leadline.v1.Displacement"> & {
   northM: number;
 
   /**
-   * Covariance of the two, m². Required, positive definite.
+   * Covariance of the two, m², positive definite. Required; an empty one takes
+   * the suite's noise.
    *
    * @generated from field: leadline.v1.Covariance covariance = 4;
    */
@@ -603,6 +605,8 @@ export declare const BeaconSchema: GenMessage<Beacon>;
  */
 export declare type Range = Message<"leadline.v1.Range"> & {
   /**
+   * The beacon. Required.
+   *
    * @generated from field: leadline.v1.Beacon beacon = 1;
    */
   beacon?: Beacon | undefined;
@@ -635,6 +639,8 @@ export declare const RangeSchema: GenMessage<Range>;
  */
 export declare type Bearing = Message<"leadline.v1.Bearing"> & {
   /**
+   * The beacon. Required.
+   *
    * @generated from field: leadline.v1.Beacon beacon = 1;
    */
   beacon?: Beacon | undefined;

@@ -54,6 +54,8 @@ export declare const PositionSchema: GenMessage<Position>;
  */
 export declare type Polygon = Message<"leadline.v1.Polygon"> & {
   /**
+   * The outside first. At least one is required.
+   *
    * @generated from field: repeated leadline.v1.Ring rings = 1;
    */
   rings: Ring[];
@@ -73,6 +75,8 @@ export declare const PolygonSchema: GenMessage<Polygon>;
  */
 export declare type Ring = Message<"leadline.v1.Ring"> & {
   /**
+   * Its corners in order, at least three.
+   *
    * @generated from field: repeated leadline.v1.Position points = 1;
    */
   points: Position[];

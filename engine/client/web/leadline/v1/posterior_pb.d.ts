@@ -48,6 +48,8 @@ export declare type Posterior = Message<"leadline.v1.Posterior"> & {
   mapFingerprint: string;
 
   /**
+   * How far it may be trusted.
+   *
    * @generated from field: leadline.v1.Status status = 5;
    */
   status: Status;
@@ -82,14 +84,15 @@ export declare type Posterior = Message<"leadline.v1.Posterior"> & {
   modes: Mode[];
 
   /**
-   * How many modes there are, those that are not listed included, and the
-   * probability that the others hold.
+   * How many modes there are, those that are not listed included.
    *
    * @generated from field: uint32 mode_count = 27;
    */
   modeCount: number;
 
   /**
+   * The probability that those hold that are not listed.
+   *
    * @generated from field: double mode_rest = 28;
    */
   modeRest: number;
@@ -116,14 +119,15 @@ export declare type Posterior = Message<"leadline.v1.Posterior"> & {
   edges: EdgeProbability[];
 
   /**
-   * How many edges have any probability, and what those hold that are not
-   * listed.
+   * How many edges have any probability.
    *
    * @generated from field: uint32 edge_count = 29;
    */
   edgeCount: number;
 
   /**
+   * The probability that those hold that are not listed.
+   *
    * @generated from field: double edge_rest = 30;
    */
   edgeRest: number;
@@ -475,6 +479,8 @@ export declare type EdgeProbability = Message<"leadline.v1.EdgeProbability"> & {
   name: string;
 
   /**
+   * Probability of being on it.
+   *
    * @generated from field: double probability = 3;
    */
   probability: number;
@@ -621,8 +627,10 @@ export declare type Nuisance = Message<"leadline.v1.Nuisance"> & {
   /**
    * Its name, as a suite has it: odometer_scale (true over measured distance,
    * less 1), gyro_bias_dps, altimeter_offset_m, barometer_offset_m, tide_m,
-   * sound_speed_scale (true over assumed speed, less 1). A bias, an offset or an
-   * error is what was measured less what is true. The heading is not among
+   * sound_speed_scale (true over assumed speed, less 1),
+   * velocity_error_east_mps and velocity_error_north_mps (true east and north),
+   * azimuth_error_deg (true displacement clockwise from the measured one). A
+   * bias, an offset or an error is what was measured less what is true. The heading is not among
    * them: see Posterior.heading.
    *
    * @generated from field: string name = 1;
@@ -664,11 +672,15 @@ export declare const NuisanceSchema: GenMessage<Nuisance>;
  */
 export declare type Evidence = Message<"leadline.v1.Evidence"> & {
   /**
+   * The sensor's name; road for the comparison with the road's heading.
+   *
    * @generated from field: string sensor = 1;
    */
   sensor: string;
 
   /**
+   * The measurement's number.
+   *
    * @generated from field: uint64 number = 2;
    */
   number: bigint;
@@ -710,6 +722,8 @@ export declare const EvidenceSchema: GenMessage<Evidence>;
  */
 export declare type Alarm = Message<"leadline.v1.Alarm"> & {
   /**
+   * What it is about.
+   *
    * @generated from field: leadline.v1.AlarmKind kind = 1;
    */
   kind: AlarmKind;
@@ -722,14 +736,15 @@ export declare type Alarm = Message<"leadline.v1.Alarm"> & {
   sensor: string;
 
   /**
-   * The kind of its measurements, as in Measurement, and of bearings from posts
-   * the post.
+   * The kind of its measurements, as in Measurement.
    *
    * @generated from field: string measurement_kind = 3;
    */
   measurementKind: string;
 
   /**
+   * Of bearings from posts the post.
+   *
    * @generated from field: string post = 4;
    */
   post: string;
@@ -779,19 +794,22 @@ export declare const AlarmSchema: GenMessage<Alarm>;
  */
 export declare type Consistency = Message<"leadline.v1.Consistency"> & {
   /**
+   * The sensor's name.
+   *
    * @generated from field: string sensor = 1;
    */
   sensor: string;
 
   /**
-   * The kind of its measurements, as in Measurement, and of bearings from posts
-   * the post.
+   * The kind of its measurements, as in Measurement.
    *
    * @generated from field: string measurement_kind = 2;
    */
   measurementKind: string;
 
   /**
+   * Of bearings from posts the post.
+   *
    * @generated from field: string post = 3;
    */
   post: string;
@@ -890,6 +908,8 @@ export declare const CountsSchema: GenMessage<Counts>;
  */
 export declare type Withdrawn = Message<"leadline.v1.Withdrawn"> & {
   /**
+   * The times of those posteriors, UTC.
+   *
    * @generated from field: repeated google.protobuf.Timestamp times = 1;
    */
   times: Timestamp[];
