@@ -62,10 +62,11 @@ fetch-clients:
 
 # generate writes the Go code of the API beside its .proto files, and the
 # messages and types of the clients in other languages, and the page, which holds
-# them.
+# them; and adds what is new to the API that tests keep from being broken.
 generate: generate-clients page
 	$(BUF) lint proto
 	$(BUF) generate proto --template proto/buf.gen.yaml
+	LEADLINE_REWRITE=added $(GO) test ./proto/... -run TestNothingBreaks
 
 # generate-clients needs protoc, of Debian's protobuf-compiler, and npm.
 generate-clients: fetch-clients
