@@ -14,7 +14,7 @@ FUZZ_TIME ?= 60s
 # the code. A tree may be named before it exists.
 RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/livelog/... ./engine/study/sweep ./engine/study/forecast ./engine/study/tune ./engine/journal/... ./cmd/...
 
-.PHONY: build test race fuzz credibility bench fetch fetch-arrow fetch-clients fetch-page page page-check generate generate-check \
+.PHONY: build test race fuzz credibility survive bench fetch fetch-arrow fetch-clients fetch-page page page-check generate generate-check \
 	generate-clients generate-clients-check format format-check vet lint lint-only vuln licences licences-check clean
 
 # build makes one static binary.
@@ -41,6 +41,11 @@ fuzz:
 # writes build/credibility.json; a run that was stopped goes on.
 credibility:
 	$(GO) run ./fixtures/credibility/run
+
+# survive kills servers, damages their files, fills their disk and sets back their
+# clock, and writes build/survive.json: at most a quarter of an hour a row.
+survive:
+	$(GO) run ./fixtures/survive -build build
 
 # bench runs every benchmark once over, without tests.
 bench:

@@ -79,7 +79,11 @@ var mayImport = map[string][]string{
 		"engine/study/score", "network", "network/roadfile", "terrain", "terrain/heightfile", "fixtures/accept", "fixtures/drives", "fixtures/outside", "fixtures/reference", "fixtures/roads", "fixtures/sim",
 	},
 	"fixtures/credibility/run": {"fixtures/credibility"},
-	"tools/...":                {},
+	"fixtures/survive": {
+		api, "engine/client", "engine/filter", "engine/journal", "engine/sensor", "engine/server", "engine/wire", "network/roadfile",
+		"fixtures/drives", "fixtures/roads", "fixtures/sim",
+	},
+	"tools/...": {},
 }
 
 // notKernel may not even import kernel: the simulator shares nothing with the
@@ -87,7 +91,7 @@ var mayImport = map[string][]string{
 var notKernel = []string{"fixtures/sim", "fixtures/heights", "fixtures/reference", "fixtures/outside", "fixtures/outside/fetch", "tools/..."}
 
 // knowProtobuf may import the API and the protobuf and gRPC libraries.
-var knowProtobuf = []string{api, "engine/server", "engine/server/web", "engine/server/operate", "engine/client", "engine/page", "engine/wire", "engine/drivefile", "cmd/leadline"}
+var knowProtobuf = []string{api, "engine/server", "engine/server/web", "engine/server/operate", "engine/client", "engine/page", "engine/wire", "engine/drivefile", "cmd/leadline", "fixtures/survive"}
 
 // wireFormat is not our API: OpenStreetMap's PBF files are coded in protobuf's
 // wire format, and its reader takes them apart itself.

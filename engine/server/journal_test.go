@@ -10,6 +10,7 @@ import (
 	"net"
 	"os"
 	"os/exec"
+	"path/filepath"
 	"strings"
 	"testing"
 	"time"
@@ -306,5 +307,76 @@ func TestSameSuite(t *testing.T) {
 	}
 	if hash[0] != hash[1] {
 		t.Errorf("with its suite changed a drive ends with %s, without with %s", hash[1], hash[0])
+	}
+}
+
+// TestFullDisk fills the disk under a server: it says so in its health, refuses
+// measurements with a hint when to come back, answers questions, and goes on by
+// itself once there is room, with nothing lost.
+func TestFullDisk(t *testing.T) {
+	dir := t.TempDir()
+	free := func() int64 {
+		var s unix.Statfs_t
+		if err := unix.Statfs(dir, &s); err != nil {
+			t.Fatal(err)
+		}
+		return int64(s.Bavail) * s.Bsize
+	}
+	const slack = 512 << 20 // others write on this disk, too
+	s, conn := serve(t, Config{Journal: &journal.Options{Dir: filepath.Join(dir, "journal"), FreeBytes: free() - slack}, MaxCells: 1000})
+	evs := voyage(3, 20)
+	want, _, _ := replayedIn(t, 1000, evs)
+	st, _ := openRaw(t, conn, &leadlinev1.Open{Header: header("v"), Drive: "d", Reply: leadlinev1.Reply_REPLY_NONE})
+	take := func(sequence uint64) error {
+		if err := st.Send(batch(sequence, evs[8*(sequence-1):8*sequence]...)); err != nil {
+			return err
+		}
+		_, err := st.Recv()
+		return err
+	}
+	if err := take(1); err != nil {
+		t.Fatal(err)
+	}
+	ballast, err := os.Create(filepath.Join(dir, "ballast"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer ballast.Close()
+	if err := unix.Fallocate(int(ballast.Fd()), 0, 0, 2*slack); err != nil {
+		t.Fatal(err)
+	}
+	if got := saidBy(take(2)); got.reason != leadlinev1.Reason_REASON_JOURNAL_FULL || got.retry <= 0 {
+		t.Errorf("on a full disk: %+v", got)
+	}
+	if err := s.Ready(); err == nil || !strings.Contains(err.Error(), "no measurement is taken: the journal is full") {
+		t.Errorf("the health of a server whose disk is full: %v", err)
+	}
+	if j, err := leadlinev1.NewPositionServiceClient(conn).DescribeJournal(limited(t), &leadlinev1.DescribeJournalRequest{}); err != nil || !strings.Contains(j.GetFailure(), "are to be left free") {
+		t.Errorf("its journal: %v, %v", j, err)
+	}
+	if _, err := where(t, conn, &leadlinev1.WhereRequest{Vehicles: []string{"v"}}); err != nil {
+		t.Errorf("asked on a full disk: %v", err)
+	}
+	if err := ballast.Truncate(0); err != nil {
+		t.Fatal(err)
+	}
+	if err := s.Ready(); err != nil {
+		t.Errorf("with room again: %v", err)
+	}
+	st, opened := openRaw(t, conn, &leadlinev1.Open{Header: header("v"), Drive: "d", Reply: leadlinev1.Reply_REPLY_NONE})
+	if opened.GetSequence() != 1 {
+		t.Errorf("it goes on after batch %d", opened.GetSequence())
+	}
+	for n := uint64(2); n <= 3; n++ {
+		if err := take(n); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if err := st.Send(ending); err != nil {
+		t.Fatal(err)
+	}
+	m, err := st.Recv()
+	if err != nil || m.GetClosed().GetPosteriorSha256() != want || len(evs) != 24 {
+		t.Errorf("it ends with %v, %v; want hash %s of %d measurements", m, err, want, len(evs))
 	}
 }
