@@ -22,6 +22,8 @@ type importOptions struct {
 	headerOptions
 	sentenceOptions
 	out, columns, date string
+	truth              string
+	truthTally         *logfile.Tally // of --truth
 	maxRefused         float64
 	asJSON             bool
 }
@@ -30,10 +32,12 @@ func importCommand() *cobra.Command {
 	var o importOptions
 	c := &cobra.Command{
 		Use:   "import LOG -o DRIVE" + drivefile.Suffix + " --vehicle NAME",
-		Short: "Make a drive file of a log: a table (CSV) or NMEA 0183 sentences",
+		Short: "Make a drive file of a log: a table (CSV), NMEA 0183 sentences, a GPX or IGC track",
 		Long: `Import makes a drive file of a log of your own. A table (CSV) needs a column
-file that says what its columns are; NMEA 0183 sentences are known. What cannot
-be used is counted, located and left out.`,
+file that says what its columns are; NMEA 0183 sentences are known, and so are
+the tracks of GPX and IGC files, whose points are fixes. What cannot be used is
+counted, located and left out. With --truth another track says where the vehicle
+was.`,
 		Args: cobra.ExactArgs(1),
 		RunE: func(c *cobra.Command, args []string) error { return o.run(c, args[0]) },
 	}
@@ -46,6 +50,7 @@ be used is counted, located and left out.`,
 	f.StringVar(&o.columns, "columns", "", "CSV: file (YAML) that says what the columns are")
 	o.sentenceOptions.flags(c)
 	f.StringVar(&o.date, "date", "", "NMEA: day of the first sentence, as 2030-05-01, where none says it or a receiver says it wrong")
+	f.StringVar(&o.truth, "truth", "", "GPX or IGC file whose points are truths, to compare with")
 	f.Float64Var(&o.maxRefused, "max-refused", 10, "give up if more than this percentage cannot be used")
 	f.BoolVar(&o.asJSON, "json", false, "print the summary as JSON")
 	return c
@@ -55,6 +60,7 @@ be used is counted, located and left out.`,
 type imported struct {
 	Drive string `json:"drive"`
 	*logfile.Tally
+	Truth *logfile.Tally `json:"truth_log,omitempty"`
 }
 
 func (o *importOptions) run(c *cobra.Command, path string) error {
@@ -85,9 +91,13 @@ func (o *importOptions) run(c *cobra.Command, path string) error {
 	var bad error // of the log, which is not the drive file's fault
 	err = writeFile(o.out, func(w io.Writer) error {
 		buffered := bufio.NewWriterSize(w, 1<<16)
-		tally, bad = importLog(in, drivefile.NewWriter(buffered), header, read)
+		drive := drivefile.NewWriter(buffered)
+		tally, bad = importLog(in, drive, header, read)
 		if bad == nil {
 			bad = o.judge(path, tally)
+		}
+		if bad == nil && o.truth != "" {
+			bad = o.addTruth(drive, tally)
 		}
 		return errors.Join(bad, buffered.Flush())
 	})
@@ -99,7 +109,7 @@ func (o *importOptions) run(c *cobra.Command, path string) error {
 		return err
 	}
 	if o.asJSON {
-		return printJSON(c.OutOrStdout(), imported{o.out, tally})
+		return printJSON(c.OutOrStdout(), imported{o.out, tally, o.truthTally})
 	}
 	return o.print(c.OutOrStdout(), tally)
 }
@@ -147,6 +157,12 @@ func (o *importOptions) reader(path string) (readLog, error) {
 		}
 		if len(bytes.TrimSpace(head)) == 0 {
 			return nil, fmt.Errorf("%s is empty: nothing was logged", path)
+		}
+		if read := trackReader(head); read != nil {
+			if flag != "" {
+				return nil, fmt.Errorf("%s is for NMEA sentences, and %s is a track: leave it out", flag, path)
+			}
+			return read(b, path, false, emit)
 		}
 		if !bytes.ContainsAny(head, "$!") {
 			return nil, fmt.Errorf("%s holds no NMEA sentence where it begins: say with --columns what the columns of a table are", path)
@@ -219,6 +235,10 @@ func passedOver(t *logfile.Tally, before string) string {
 func (o *importOptions) print(w io.Writer, t *logfile.Tally) error {
 	fmt.Fprintf(w, "%s: %d measurements and %d truths from %d lines of %s\n", o.out, t.Usable(), t.Truths, t.Lines, t.Log)
 	printTally(w, t)
+	if o.truthTally != nil {
+		fmt.Fprintf(w, "%d truths from %d lines of %s\n", o.truthTally.Truths, o.truthTally.Lines, o.truthTally.Log)
+		printTally(w, o.truthTally)
+	}
 	next := programName() + " replay " + shellWord(o.out)
 	if o.mapName == "" {
 		next += " --map MAP"
@@ -227,9 +247,11 @@ func (o *importOptions) print(w io.Writer, t *logfile.Tally) error {
 	return err
 }
 
+func stampTime(at time.Time) string { return at.Format("2006-01-02T15:04:05.999Z") }
+
 // printTally prints what became of a log.
 func printTally(w io.Writer, t *logfile.Tally) {
-	stamp := func(at time.Time) string { return at.Format("2006-01-02T15:04:05.999Z") }
+	stamp := stampTime
 	if t.From != nil {
 		fmt.Fprintf(w, "  %-14s %s to %s, %v\n", "time", stamp(*t.From), stamp(*t.To), t.To.Sub(*t.From).Round(time.Millisecond))
 	}

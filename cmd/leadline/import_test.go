@@ -441,3 +441,48 @@ func TestImportBadInput(t *testing.T) {
 		t.Error(err)
 	}
 }
+
+// TestImportTracks: a track's points are fixes, or the truths of another log that
+// was recorded meanwhile.
+func TestImportTracks(t *testing.T) {
+	dir := t.TempDir()
+	write := func(name, text string) string {
+		path := filepath.Join(dir, name)
+		if err := os.WriteFile(path, []byte(text), 0o600); err != nil {
+			t.Fatal(err)
+		}
+		return path
+	}
+	igc := write("f.igc", "AXYZ001\r\nHFDTE010530\r\nHFPLTPILOT:SOMEBODY\r\nB1200004500000N03000000WA0000000100\r\nB1200014500000N03000100WA0000000101\r\n")
+	gpx := write("t.gpx", `<gpx><trk><trkseg><trkpt lat="45" lon="-30"><time>2030-05-01T12:00:01Z</time></trkpt></trkseg></trk></gpx>`)
+	late := write("late.gpx", `<gpx><trk><trkseg><trkpt lat="45" lon="-30"><time>2031-05-01T12:00:01Z</time></trkpt></trkseg></trk></gpx>`)
+	none := write("none.gpx", `<gpx><wpt lat="45" lon="-30"/></gpx>`)
+	out := filepath.Join(dir, "x.drive.jsonl")
+	good(t, "import", igc, "-o", out, "--vehicle", "g", "--truth", gpx)
+	text, err := os.ReadFile(out)
+	if err != nil || strings.Contains(string(text), "SOMEBODY") {
+		t.Fatalf("%v: %s", err, text)
+	}
+	d, err := drivefile.ReadAll(strings.NewReader(string(text)), out)
+	if err != nil || len(d.Events) != 2 || len(d.Truths) != 1 || d.Events[0].Measurement.Kind() != sensor.KindFix {
+		t.Errorf("%v, %s", err, text)
+	}
+	for want, args := range map[string][]string{
+		"they have no time in common":      {igc, "--truth", late},
+		"holds no track point":             {igc, "--truth", none},
+		"it holds no measurement":          {none},
+		"is neither GPX nor IGC":           {igc, "--truth", out},
+		"leave it out":                     {gpx, "--reckon"},
+		"there is no file":                 {gpx, "--truth", filepath.Join(dir, "nothing")},
+		"its outermost element is \"kml\"": {write("k.gpx", "<kml/>")},
+	} {
+		var o, e strings.Builder
+		got := filepath.Join(dir, "bad.drive.jsonl")
+		if status := run(append([]string{"import", "-o", got, "--vehicle", "g"}, args...), &o, &e); status != exitBad || !strings.Contains(e.String(), want) {
+			t.Errorf("%v: status %d, %s", args, status, e.String())
+		}
+		if _, err := os.Stat(got); err == nil {
+			t.Errorf("%v leaves a file", args)
+		}
+	}
+}
