@@ -24,6 +24,9 @@ func (t *Tiles) scale() float64 {
 
 // roughness returns Σ (√p(i+1) - √p(i))² along either axis.
 func (t *Tiles) roughness() (je, jn float64) {
+	// The tile's roots, with those of the next column and row.
+	const side = TileSide + 1
+	var root [side * side]float64
 	for i, at := range t.At {
 		tile := t.tile(i)
 		var east, north []float64
@@ -33,27 +36,35 @@ func (t *Tiles) roughness() (je, jn float64) {
 		if j := t.find(TileAt{at.Col, at.Row + 1}); j >= 0 {
 			north = t.tile(j)
 		}
+		clear(root[:])
 		for r := range TileSide {
-			for c := range TileSide {
-				root := math.Sqrt(tile[r*TileSide+c])
-				var e, n float64
-				if c+1 < TileSide {
-					e = tile[r*TileSide+c+1]
-				} else if east != nil {
-					e = east[r*TileSide]
-				}
-				if r+1 < TileSide {
-					n = tile[(r+1)*TileSide+c]
-				} else if north != nil {
-					n = north[c]
-				}
-				de, dn := math.Sqrt(e)-root, math.Sqrt(n)-root
+			roots(root[r*side:], tile[r*TileSide:(r+1)*TileSide])
+			if east != nil {
+				root[r*side+TileSide] = math.Sqrt(east[r*TileSide])
+			}
+		}
+		if north != nil {
+			roots(root[TileSide*side:], north[:TileSide])
+		}
+		for r := range TileSide {
+			here, above := root[r*side:(r+1)*side], root[(r+1)*side:(r+2)*side]
+			for c, x := range here[:TileSide] {
+				de, dn := here[c+1]-x, above[c]-x
 				je += float64(de * de)
 				jn += float64(dn * dn)
 			}
 		}
 	}
 	return je, jn
+}
+
+// roots writes the square roots of masses, of which many are 0.
+func roots(dst, mass []float64) {
+	for i, v := range mass {
+		if v != 0 {
+			dst[i] = math.Sqrt(v)
+		}
+	}
 }
 
 // Spacing is at most fineScale of the belief's scale where the budget allows;
@@ -109,20 +120,12 @@ func (b *Belief) Cells() int {
 	return b.occupiedCells()
 }
 
-// refineTaps are the weights at -3 … 3 finer cells of interpolation by cubics:
-// a point keeps half its mass and those between two get -1/32, 9/32, 9/32,
-// -1/32 of their neighbours'. Mean and variance are kept.
-//
-// Source: the four-point scheme of Deslauriers & Dubuc, Constr. Approx. 5
-// (1989).
-var refineTaps = [7]float64{-1. / 32, 0, 9. / 32, 1. / 2, 9. / 32, 0, -1. / 32}
-
 // refine doubles the resolution. Where a belief has an edge, interpolation
 // would go below zero: such cells are empty and the others share their mass;
 // what that does to the mean and the variance is made up for as by coarsen.
 func (b *Belief) refine(ts *tileSpace) {
 	before := b.latticeMoments()
-	dst := b.interpolate(ts)
+	dst := b.interpolate(ts, nil)
 	kept := 0.0
 	for _, v := range dst.Mass {
 		kept += v
@@ -132,43 +135,6 @@ func (b *Belief) refine(ts *tileSpace) {
 		dst.Mass[i] *= scale
 	}
 	b.swap(ts, Lattice{b.Lattice.Origin, b.Lattice.SpacingM / 2}, before)
-}
-
-// interpolate writes the masses over a lattice of half the spacing into
-// ts.spare, with 0 for what would be below.
-func (b *Belief) interpolate(ts *tileSpace) *Tiles {
-	src := &b.Tiles
-	dst := &ts.spare
-	// Finer tiles: each old one becomes four, and its border leans three
-	// cells over on every side.
-	ts.cover(src.At, func(t TileAt) (lo, hi TileAt) {
-		c, r := 2*t.Col*TileSide, 2*t.Row*TileSide
-		return TileAt{c - 3, r - 3}, TileAt{c + 2*TileSide + 1, r + 2*TileSide + 1}
-	})
-	for i, at := range src.At {
-		for x, v := range src.tile(i) {
-			if v == 0 {
-				continue
-			}
-			col := 2 * (at.Col*TileSide + int32(x%TileSide))
-			row := 2 * (at.Row*TileSide + int32(x/TileSide))
-			for dr, wr := range refineTaps {
-				if wr == 0 {
-					continue
-				}
-				vr := float64(v * wr)
-				for dc, wc := range refineTaps {
-					if wc != 0 {
-						dst.add(ts, col+int32(dc)-3, row+int32(dr)-3, float64(vr*wc))
-					}
-				}
-			}
-		}
-	}
-	for i, v := range dst.Mass {
-		dst.Mass[i] = math.Max(v, 0)
-	}
-	return dst
 }
 
 // coarsen halves the resolution: four cells become one at their middle. The
@@ -267,11 +233,7 @@ func (ts *tileSpace) cover(tiles []TileAt, span func(TileAt) (lo, hi TileAt)) {
 	at := ts.spare.At[:0]
 	for _, t := range tiles {
 		lo, hi := span(t)
-		for r := floorDiv(lo.Row, TileSide); r <= floorDiv(hi.Row, TileSide); r++ {
-			for c := floorDiv(lo.Col, TileSide); c <= floorDiv(hi.Col, TileSide); c++ {
-				at = append(at, TileAt{c, r})
-			}
-		}
+		at = appendTiles(at, lo, hi)
 	}
 	ts.empty(sortedTiles(at))
 }

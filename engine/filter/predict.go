@@ -31,6 +31,8 @@ type Workspace struct {
 	logs, scratch []float64
 	blunt         []float32 // a lattice's cells: see noiseWork.blunt
 	keep          []bool    // and keepNear
+	cells         []uint16  // those of a tile that have mass
+	cellLogs      []float64
 	tiles         tileSpace
 
 	foretell    *Predictive

@@ -32,7 +32,7 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 	}
 	plane := space.(PlaneSpace)
 	b.logTiles(plane, l, w)
-	var before *Belief
+	var before *Belief // before is set once the lattice is another one
 	tight := 0.0
 	for range maxRefinements {
 		cells, ok := w.outcome(b.Tiles.Mass, cellFloor)
@@ -50,15 +50,20 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 		if 4*cells > maxCells || scale >= 1/fineScale && !blunt {
 			break
 		}
-		if before == nil {
-			before = b.Clone()
-		}
+		pruned := b.Pruned
 		b.keepNear(w)
 		// Not refine: the prior has been cut off where nothing is left, and
 		// its moments mean nothing there.
-		b.interpolate(&w.tiles)
+		b.interpolate(&w.tiles, w.keep)
 		w.tiles.spare.Surplus = b.Tiles.Surplus
-		b.Tiles, w.tiles.spare = w.tiles.spare, b.Tiles
+		if before == nil {
+			was := *b
+			was.Pruned = pruned
+			before = &was
+			b.Tiles, w.tiles.spare, w.tiles.first = w.tiles.spare, w.tiles.first, b.Tiles
+		} else {
+			b.Tiles, w.tiles.spare = w.tiles.spare, b.Tiles
+		}
 		b.Lattice.SpacingM /= 2
 		b.dropEmptyTiles()
 		b.logTiles(plane, l, w)
@@ -73,6 +78,7 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 		return logEvidence + kernel.Log(share), nil
 	}
 	if before != nil {
+		w.tiles.first = b.Tiles
 		*b = *before
 	}
 	return logEvidence, err

@@ -236,6 +236,19 @@ func (b *Belief) seedPlane(s PlaneSpace, prior Prior, maxCells int) error {
 	return b.normalise(total)
 }
 
+// points writes the centres of a tile's cells.
+func (l Lattice) points(at *Columns, t TileAt) {
+	i := 0
+	for r := range int32(TileSide) {
+		n := l.Centre(0, t.Row*TileSide+r).N
+		for c := range int32(TileSide) {
+			at.East[i] = l.Centre(t.Col*TileSide+c, 0).E
+			at.North[i] = n
+			i++
+		}
+	}
+}
+
 // headingParts is how many Gaussians a cell starts with.
 func (b *Belief) headingParts() int {
 	if i := Index(b.Quantities, Heading); i >= 0 && b.Quantities[i].PriorVar > float64(math.Pi*math.Pi/9) {

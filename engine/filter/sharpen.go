@@ -43,8 +43,8 @@ func (w *Workspace) blunts(t *Tiles, cells int, scale float64) (now, twice bool)
 // that are a few cells across.
 const keepCells = 3
 
-// keepNear drops cells that are not within keepCells of one to which the outcome
-// in w.scratch leaves something, and counts what it leaves to them.
+// keepNear marks in w.keep the cells within keepCells of one to which the outcome
+// in w.scratch leaves something, and counts what it leaves to the others.
 func (b *Belief) keepNear(w *Workspace) {
 	t := &b.Tiles
 	w.tiles.indexTiles(t)
@@ -83,7 +83,6 @@ func (b *Belief) keepNear(w *Workspace) {
 	for i, q := range w.scratch {
 		if !w.keep[i] {
 			b.Pruned += q
-			t.Mass[i] = 0
 		}
 	}
 }

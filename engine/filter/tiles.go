@@ -21,6 +21,11 @@ type tileSpace struct {
 	taps  taps
 	// density is of Gaussians, see width.
 	density []float64
+	// at and fine are of interpolate; first is the lattice that UpdateWithin
+	// began with.
+	at    []int32
+	fine  []float64
+	first Tiles
 }
 
 // tile returns the masses of tile i.
@@ -169,6 +174,16 @@ func (ts *tileSpace) dilate(src *Tiles) {
 		}
 	}
 	ts.spare.At = sortedTiles(at)
+}
+
+// appendTiles appends the tiles between two cells.
+func appendTiles(at []TileAt, lo, hi TileAt) []TileAt {
+	for r := floorDiv(lo.Row, TileSide); r <= floorDiv(hi.Row, TileSide); r++ {
+		for c := floorDiv(lo.Col, TileSide); c <= floorDiv(hi.Col, TileSide); c++ {
+			at = append(at, TileAt{c, r})
+		}
+	}
+	return at
 }
 
 // sortedTiles sorts tiles and drops doubles, in place.

@@ -42,24 +42,28 @@ func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 	w.predictions.least = true
 	for i := range t.At {
 		logs := w.logs[i*tileCells : (i+1)*tileCells]
-		w.at.Resize(wants, 2, tileCells)
-		b.Lattice.points(&w.at, t.At[i])
+		tile := t.tile(i)
+		w.locateCells(wants, b.Lattice, t.At[i], tile)
+		n := len(w.cells)
 		space.Sample(&w.at)
 		if !linear {
-			like.LogLikelihood(logs, &w.at)
+			w.cellLogs = resize(w.cellLogs, n)
+			clear(w.cellLogs)
+			like.LogLikelihood(w.cellLogs, &w.at)
+			for j, x := range w.cells {
+				logs[x] = w.cellLogs[j]
+			}
 			continue
 		}
 		m := lin.Rows()
-		w.terms.Reset(tileCells, m, 2)
+		w.terms.Reset(n, m, 2)
 		lin.Linearize(&w.terms, &w.at, nil, nil)
-		for x, mass := range t.tile(i) {
-			if mass == 0 {
-				continue
-			}
-			logs[x] = nw.density(&w.terms, x, least)
-			w.blunt[i*tileCells+x] = nw.blunt(&w.terms, x, least)
+		blunt := w.blunt[i*tileCells : (i+1)*tileCells]
+		for j, x := range w.cells {
+			logs[x] = nw.density(&w.terms, j, least)
+			blunt[x] = nw.blunt(&w.terms, j, least)
 			if p != nil {
-				w.predictions.add(mass, &w.terms, x, m, w.terms.ofPosition(x, m, least), &w.at, turned)
+				w.predictions.add(tile[x], &w.terms, j, m, w.terms.ofPosition(j, m, least), &w.at, turned)
 			}
 		}
 	}
@@ -95,16 +99,23 @@ func (b *Belief) weighTiles(w *Workspace) (float64, error) {
 	return logEvidence, nil
 }
 
-// points writes the centres of a tile's cells.
-func (l Lattice) points(at *Columns, t TileAt) {
-	i := 0
-	for r := range int32(TileSide) {
-		n := l.Centre(0, t.Row*TileSide+r).N
-		for c := range int32(TileSide) {
-			at.East[i] = l.Centre(t.Col*TileSide+c, 0).E
-			at.North[i] = n
-			i++
+// locateCells sets w.cells to the cells of a tile that have mass, and w.at to their
+// centres.
+func (w *Workspace) locateCells(wants Wants, l Lattice, t TileAt, tile []float64) {
+	w.cells = w.cells[:0]
+	for x, v := range tile {
+		if v != 0 {
+			w.cells = append(w.cells, uint16(x))
 		}
+	}
+	var east, north [TileSide]float64
+	for c := range int32(TileSide) {
+		centre := l.Centre(t.Col*TileSide+c, t.Row*TileSide+c)
+		east[c], north[c] = centre.E, centre.N
+	}
+	w.at.Resize(wants, 2, len(w.cells))
+	for j, x := range w.cells {
+		w.at.East[j], w.at.North[j] = east[x%TileSide], north[x/TileSide]
 	}
 }
 
