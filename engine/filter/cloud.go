@@ -44,7 +44,7 @@ func (b *Belief) readTiles(dst *Cloud) {
 	for _, s := range []*[]float64{&dst.East, &dst.North, &dst.Mass, &dst.VarEE, &dst.VarEN, &dst.VarNN} {
 		*s = resize(*s, n)
 	}
-	*dst = Cloud{East: dst.East[:0], North: dst.North[:0], Mass: dst.Mass[:0], VarEE: dst.VarEE[:0], VarEN: dst.VarEN[:0], VarNN: dst.VarNN[:0]}
+	*dst = Cloud{East: dst.East, North: dst.North, Mass: dst.Mass, VarEE: dst.VarEE, VarEN: dst.VarEN, VarNN: dst.VarNN}
 	// A cell stands for its square only where the lattice is coarse; where it
 	// is fine, the masses' own variance is the belief's. What changing the
 	// spacing added comes off, as far as a cell has it.
@@ -55,18 +55,16 @@ func (b *Belief) readTiles(dst *Cloud) {
 	}
 	ee := math.Max(0, within-b.Tiles.Surplus[0])
 	nn := math.Max(0, within-b.Tiles.Surplus[2])
+	clear(dst.VarEN)
+	j := 0
 	for i, at := range b.Tiles.At {
+		east, north := b.Lattice.axes(at)
 		for x, v := range b.Tiles.tile(i) {
-			if v == 0 {
-				continue
+			if v > 0 {
+				dst.East[j], dst.North[j], dst.Mass[j] = east[x%TileSide], north[x/TileSide], v
+				dst.VarEE[j], dst.VarNN[j] = ee, nn
+				j++
 			}
-			c := b.Lattice.Centre(at.Col*TileSide+int32(x%TileSide), at.Row*TileSide+int32(x/TileSide))
-			dst.East = append(dst.East, c.E)
-			dst.North = append(dst.North, c.N)
-			dst.Mass = append(dst.Mass, v)
-			dst.VarEE = append(dst.VarEE, ee)
-			dst.VarEN = append(dst.VarEN, 0)
-			dst.VarNN = append(dst.VarNN, nn)
 		}
 	}
 }

@@ -33,10 +33,11 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 	plane := space.(PlaneSpace)
 	b.logTiles(plane, l, w)
 	var before *Belief // before is set once the lattice is another one
-	tight := 0.0
+	tight, weighed := 0.0, false
 	for range maxRefinements {
-		cells, ok := w.outcome(b.Tiles.Mass, cellFloor)
-		if !ok {
+		var cells int
+		cells, logEvidence, err = w.outcome(b.Tiles.Mass, cellFloor)
+		if weighed = err == nil; err != nil {
 			break
 		}
 		// scratch holds the posterior's masses, whose scale is asked for.
@@ -67,13 +68,17 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 		b.Lattice.SpacingM /= 2
 		b.dropEmptyTiles()
 		b.logTiles(plane, l, w)
+		weighed = false
 	}
 	share := 1.0
 	if before != nil {
 		share = sum(b.Tiles.Mass) / sum(before.Tiles.Mass)
 	}
-	logEvidence, err = b.weighTiles(w)
+	if !weighed {
+		_, logEvidence, err = w.outcome(b.Tiles.Mass, cellFloor)
+	}
 	if err == nil {
+		b.weighed(w)
 		b.Tight = tight
 		return logEvidence + kernel.Log(share), nil
 	}
@@ -91,7 +96,7 @@ func (b *Belief) updateGaussians(space Space, l any, maxCells int, w *Workspace)
 	var before *Belief
 	b.condition(space, l, w)
 	for range maxRefinements {
-		if _, ok := w.outcome(b.Mass, Floor); !ok {
+		if _, _, err := w.outcome(b.Mass, Floor); err != nil {
 			break
 		}
 		after := &b.Gaussians
@@ -136,34 +141,11 @@ func (b *Belief) wide(sigma float64, w *Workspace) bool {
 }
 
 // outcome writes the masses that w.logs would leave, normalised, into
-// w.scratch and returns how many are at least floor; false if none is, or if a
-// log is not one.
-func (w *Workspace) outcome(mass []float64, floor float64) (n int, ok bool) {
-	most := math.Inf(-1)
-	for i, l := range w.logs {
-		if mass[i] >= leastMass {
-			most = math.Max(most, l)
-		}
-	}
-	if !(math.Abs(most) <= math.MaxFloat64) {
-		return 0, false
-	}
+// w.scratch and returns how many are at least floor, and the log evidence; an
+// error if none is left.
+func (w *Workspace) outcome(mass []float64, floor float64) (n int, logEvidence float64, err error) {
 	w.scratch = resize(w.scratch, len(mass))
-	sum := 0.0
-	for i, l := range w.logs {
-		w.scratch[i] = 0
-		if mass[i] >= leastMass {
-			w.scratch[i] = float64(mass[i] * kernel.Exp(l-most))
-		}
-		sum += w.scratch[i]
-	}
-	for i := range w.scratch {
-		w.scratch[i] /= sum
-		if w.scratch[i] >= floor {
-			n++
-		}
-	}
-	return n, sum > 0
+	return weighInto(w.scratch, mass, w.logs, floor)
 }
 
 // contract returns what is left of a lattice's surplus of variance after a

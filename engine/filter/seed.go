@@ -238,13 +238,11 @@ func (b *Belief) seedPlane(s PlaneSpace, prior Prior, maxCells int) error {
 
 // points writes the centres of a tile's cells.
 func (l Lattice) points(at *Columns, t TileAt) {
-	i := 0
-	for r := range int32(TileSide) {
-		n := l.Centre(0, t.Row*TileSide+r).N
-		for c := range int32(TileSide) {
-			at.East[i] = l.Centre(t.Col*TileSide+c, 0).E
-			at.North[i] = n
-			i++
+	east, north := l.axes(t)
+	for r, n := range north {
+		copy(at.East[r*TileSide:], east[:])
+		for c := range east {
+			at.North[r*TileSide+c] = n
 		}
 	}
 }

@@ -6,6 +6,7 @@ import (
 	"slices"
 
 	"leadline/engine/geo"
+	"leadline/engine/kernel"
 )
 
 const tileCells = TileSide * TileSide
@@ -21,7 +22,7 @@ type tileSpace struct {
 	taps  taps
 	// density is of Gaussians, see width.
 	density []float64
-	// at and fine are of interpolate; first is the lattice that UpdateWithin
+	// at is of interpolate, fine a tile with what is around it; first is the lattice that UpdateWithin
 	// began with.
 	at    []int32
 	fine  []float64
@@ -83,9 +84,17 @@ func (b *Belief) spread(ts *tileSpace) {
 	reach := int32(len(ts.taps.weight) - 1)
 	ts.dilate(src)
 	dst.Mass = resize(dst.Mass, len(dst.At)*tileCells)
-	clear(dst.Mass)
 	for i, at := range dst.At {
 		out := dst.tile(i)
+		switch (TileAt{ts.taps.col, ts.taps.row}) {
+		case TileAt{Col: 1}:
+			ts.spreadEast(out, at, src)
+			continue
+		case TileAt{Row: 1}:
+			ts.spreadNorth(out, at, src)
+			continue
+		}
+		clear(out)
 		ts.gather(out, at, src, 0, 0, ts.taps.weight[0])
 		for n := int32(1); n <= reach; n++ {
 			weight := ts.taps.weight[n]
@@ -96,6 +105,43 @@ func (b *Belief) spread(ts *tileSpace) {
 	dst.Surplus = src.Surplus
 	b.Tiles, ts.spare = *dst, *src
 	b.dropTiles()
+}
+
+// spreadEast writes what the masses of src make of a tile when they are spread
+// along its rows.
+func (ts *tileSpace) spreadEast(out []float64, at TileAt, src *Tiles) {
+	beside := (int32(len(ts.taps.weight)-1) + TileSide - 1) / TileSide
+	side := int(2*beside+1) * TileSide
+	ts.fine = resize(ts.fine, TileSide*side)
+	for c := -beside; c <= beside; c++ {
+		to := ts.fine[(c+beside)*TileSide:]
+		j, ok := ts.index[TileAt{at.Col + c, at.Row}]
+		for r := range TileSide {
+			if ok {
+				copy(to[r*side:][:TileSide], src.tile(int(j))[r*TileSide:])
+			} else {
+				clear(to[r*side:][:TileSide])
+			}
+		}
+	}
+	for r := range TileSide {
+		kernel.Spread(out[r*TileSide:(r+1)*TileSide], ts.fine, r*side+int(beside)*TileSide, 1, ts.taps.weight)
+	}
+}
+
+// spreadNorth is spreadEast along the tile's columns.
+func (ts *tileSpace) spreadNorth(out []float64, at TileAt, src *Tiles) {
+	beside := (int32(len(ts.taps.weight)-1) + TileSide - 1) / TileSide
+	ts.fine = resize(ts.fine, int(2*beside+1)*tileCells)
+	for r := -beside; r <= beside; r++ {
+		to := ts.fine[(r+beside)*tileCells:][:tileCells]
+		if j, ok := ts.index[TileAt{at.Col, at.Row + r}]; ok {
+			copy(to, src.tile(int(j)))
+		} else {
+			clear(to)
+		}
+	}
+	kernel.Spread(out, ts.fine, int(beside)*tileCells, TileSide, ts.taps.weight)
 }
 
 // gather adds weight times the masses at (col-dc, row-dr) to the tile at.

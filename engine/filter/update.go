@@ -102,6 +102,13 @@ func (b *Belief) settle(l any, w *Workspace) (float64, error) {
 // the log of the sum before, relative to the sum of the masses on entry. If
 // nothing is left it returns ErrContradiction and leaves mass alone.
 func weigh(mass, logs []float64) (float64, error) {
+	_, logEvidence, err := weighInto(mass, mass, logs, 0)
+	return logEvidence, err
+}
+
+// weighInto is weigh with dst for the result, which may be mass, and counts what
+// is at least floor.
+func weighInto(dst, mass, logs []float64, floor float64) (n int, logEvidence float64, err error) {
 	most, before := math.Inf(-1), 0.0
 	for i, l := range logs {
 		if l != l || l > math.MaxFloat64 {
@@ -113,23 +120,29 @@ func weigh(mass, logs []float64) (float64, error) {
 		}
 	}
 	if math.IsInf(most, -1) {
-		return most, ErrContradiction
+		return 0, most, ErrContradiction
 	}
 	sum := 0.0
-	for i, l := range logs {
-		if mass[i] < leastMass {
-			logs[i] = 0
-			continue
+	for i := 0; i < len(dst); i += weighRun {
+		j := min(i+weighRun, len(dst))
+		kernel.Weigh(dst[i:j], mass[i:j], logs[i:j], most, leastMass)
+		for _, v := range dst[i:j] {
+			sum += v
 		}
-		logs[i] = float64(mass[i] * kernel.Exp(l-most))
-		sum += logs[i]
 	}
 	scale := 1 / sum
-	for i, v := range logs {
-		mass[i] = float64(v * scale)
+	for i, v := range dst {
+		v *= scale
+		if dst[i] = v; v >= floor {
+			n++
+		}
 	}
-	return most + kernel.Log(sum/before), nil
+	return n, most + kernel.Log(sum/before), nil
 }
+
+// weighRun is how many masses are weighed before they are summed: as many as
+// stay in the cache.
+const weighRun = 1024
 
 // leastMass is what counts as mass when a belief is weighed. Less is left where a
 // lattice is refined around a measurement that contradicts it by many sigmas; if

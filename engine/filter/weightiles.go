@@ -9,14 +9,17 @@ import (
 // updateTiles weighs the lattice's cells.
 func (b *Belief) updateTiles(space PlaneSpace, l any, w *Workspace) (float64, error) {
 	b.logTiles(space, l, w)
-	return b.weighTiles(w)
+	_, logEvidence, err := w.outcome(b.Tiles.Mass, cellFloor)
+	if err == nil {
+		b.weighed(w)
+	}
+	return logEvidence, err
 }
 
 // logTiles writes the log likelihood of every cell into w.logs.
 func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 	t := &b.Tiles
 	w.logs = resize(w.logs, len(t.Mass))
-	clear(w.logs)
 	h := b.Lattice.SpacingM
 	least := square(leastSigma * h)
 	w.blunt = w.blunt[:0]
@@ -42,6 +45,7 @@ func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 	w.predictions.least = true
 	for i := range t.At {
 		logs := w.logs[i*tileCells : (i+1)*tileCells]
+		clear(logs)
 		tile := t.tile(i)
 		w.locateCells(wants, b.Lattice, t.At[i], tile)
 		n := len(w.cells)
@@ -73,18 +77,15 @@ func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 	}
 }
 
-// weighTiles weighs the cells by w.logs.
-func (b *Belief) weighTiles(w *Workspace) (float64, error) {
+// weighed makes the outcome in w.scratch the cells' masses.
+func (b *Belief) weighed(w *Workspace) {
 	t := &b.Tiles
 	owes := t.Surplus != [3]float64{}
 	var prior latticeMoments
 	if owes {
 		prior = b.latticeMoments()
 	}
-	logEvidence, err := weigh(t.Mass, w.logs)
-	if err != nil {
-		return logEvidence, err
-	}
+	t.Mass, w.scratch = w.scratch, t.Mass
 	before := b.Pruned
 	b.dropTiles()
 	if lost := b.Pruned - before; lost > 0 {
@@ -96,7 +97,6 @@ func (b *Belief) weighTiles(w *Workspace) (float64, error) {
 	if owes {
 		t.Surplus = contract(t.Surplus, prior, b.latticeMoments())
 	}
-	return logEvidence, nil
 }
 
 // locateCells sets w.cells to the cells of a tile that have mass, and w.at to their
@@ -108,15 +108,20 @@ func (w *Workspace) locateCells(wants Wants, l Lattice, t TileAt, tile []float64
 			w.cells = append(w.cells, uint16(x))
 		}
 	}
-	var east, north [TileSide]float64
-	for c := range int32(TileSide) {
-		centre := l.Centre(t.Col*TileSide+c, t.Row*TileSide+c)
-		east[c], north[c] = centre.E, centre.N
-	}
+	east, north := l.axes(t)
 	w.at.Resize(wants, 2, len(w.cells))
 	for j, x := range w.cells {
 		w.at.East[j], w.at.North[j] = east[x%TileSide], north[x/TileSide]
 	}
+}
+
+// axes are the places of a tile's columns and rows.
+func (l Lattice) axes(t TileAt) (east, north [TileSide]float64) {
+	for c := range int32(TileSide) {
+		centre := l.Centre(t.Col*TileSide+c, t.Row*TileSide+c)
+		east[c], north[c] = centre.E, centre.N
+	}
+	return east, north
 }
 
 // ofPosition is the variance of what the rows take of a position at i that has

@@ -55,6 +55,10 @@ func (s *Session) read(sum *summary.Summarizer, dst *summary.Posterior) error {
 	return sum.Summarize(dst, &in)
 }
 
+// groundRun is how many places beyond looks up at once: as many as stay in the
+// cache.
+const groundRun = 1024
+
 // beyond is how much of the belief lies where a plane's map ends or knows no
 // height; nothing of one that has left the roads.
 func (s *Session) beyond(p filter.PlaneSpace) float64 {
@@ -64,14 +68,17 @@ func (s *Session) beyond(p filter.PlaneSpace) float64 {
 	case !ok:
 		return 0
 	case h.HasHeights():
-		s.ground.Resize(filter.WantHeight, 2, len(c.Mass))
-		copy(s.ground.East, c.East)
-		copy(s.ground.North, c.North)
-		p.Sample(&s.ground)
-		for i, m := range c.Mass {
-			all += m
-			if h := s.ground.Height[i]; h != h {
-				off += m
+		for i := 0; i < len(c.Mass); i += groundRun {
+			run := c.Mass[i:min(i+groundRun, len(c.Mass))]
+			s.ground.Resize(filter.WantHeight, 2, len(run))
+			copy(s.ground.East, c.East[i:])
+			copy(s.ground.North, c.North[i:])
+			p.Sample(&s.ground)
+			for j, m := range run {
+				all += m
+				if h := s.ground.Height[j]; h != h {
+					off += m
+				}
 			}
 		}
 	default:

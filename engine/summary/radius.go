@@ -46,6 +46,9 @@ func (s *Summarizer) takeApart(centre geo.Point, meanSquare float64) {
 	if s.dim == 1 && len(s.mass) > fewPieces {
 		s.needles = slices.Grow(s.needles, len(s.mass)) // a wide belief has mostly one each
 	}
+	if s.square != (Cov{}) {
+		s.discs = slices.Grow(s.discs, len(s.mass)) // and a lattice just one
+	}
 	for i, m := range s.mass {
 		if m > 0 {
 			s.take(m, geo.Point{E: s.east[i], N: s.north[i]}.Sub(centre), s.covs[i], meanSquare)

@@ -1,0 +1,36 @@
+package kernel
+
+// Spread writes a symmetric sum of neighbours,
+//
+//	dst[i] = weight[0]·src[at+i] + Σ weight[n]·(src[at+i-n·stride] + src[at+i+n·stride]),
+//
+// added from the middle outwards, first below and then above. All that it reads
+// must lie in src, which dst must not overlap.
+func Spread(dst, src []float64, at, stride int, weight []float64) {
+	reach := (len(weight) - 1) * stride
+	if len(dst) == 0 {
+		return
+	}
+	_, _ = src[at-reach], src[at+len(dst)-1+reach]
+	spread(dst, src, at, stride, weight)
+}
+
+// spreadPlain is Spread in plain Go, from index i of dst on.
+func spreadPlain(dst, src []float64, at, stride int, weight []float64, i int) {
+	if i == len(dst) {
+		return
+	}
+	out := dst[i:]
+	at += i
+	for x, v := range src[at : at+len(out)] {
+		out[x] = float64(weight[0] * v)
+	}
+	for n, w := range weight[1:] {
+		shift := (n + 1) * stride
+		below, above := src[at-shift:][:len(out)], src[at+shift:][:len(out)]
+		for x := range out {
+			sum := out[x] + float64(w*below[x])
+			out[x] = sum + float64(w*above[x])
+		}
+	}
+}
