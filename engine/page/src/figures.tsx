@@ -7,7 +7,7 @@ import { chosen, chosenKnown, close, closeTrouble, past } from "./live";
 import { measured, nuisanceName } from "./measured";
 import { Plot } from "./plot";
 import { clock } from "./settings";
-import { alarmWords, onRoads, whereabouts } from "./worry";
+import { alarmWords, onRoads, radiiHold, whereabouts } from "./worry";
 
 export function Figures() {
   const [c, k] = [close.value, chosenKnown.value];
@@ -29,7 +29,7 @@ export function Figures() {
       <dl class="pairs">
         <dt>As of</dt>
         <dd>{clockTimes(p.time!)}</dd>
-        <dt>Within, at 50, 95, 99 %</dt>
+        <dt>{radiiHold(p) ? "Within, at 50, 95, 99 %" : "If it is not lost, at 50, 95, 99 %"}</dt>
         <dd>
           {length(p.radii!.radius50M)}, {length(p.radii!.radius95M)}, {length(p.radii!.radius99M)}
         </dd>

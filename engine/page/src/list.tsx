@@ -4,7 +4,7 @@ import { length } from "./format";
 import { chosen, fleet, link, order } from "./live";
 import { address, shown } from "./route";
 import { clock } from "./settings";
-import { ratio, remarks, silenceWords, statusWords, whereabouts, worry, type Known } from "./worry";
+import { radiiHold, ratio, remarks, silenceWords, statusWords, whereabouts, worry, type Known } from "./worry";
 
 /** Where a multiple of the alert limit lies on the ruler, 0 to 1; the limit itself is in the middle. */
 export const along = (of: number) => Math.min(0.99, Math.max(0.01, 0.5 + Math.log2(of) / 8));
@@ -40,7 +40,16 @@ function Row({ name }: { name: string }) {
         <span class="status">{k.over ? "ended" : word}</span>
         <Ruler k={k} />
         <span class="radius">
-          95 % within <b>{length(p.radii?.radius95M ?? Infinity)}</b>, limit {length(p.alertLimitM)}
+          {radiiHold(p) ? (
+            <>
+              95 % within <b>{length(p.radii?.radius95M ?? Infinity)}</b>
+            </>
+          ) : (
+            <>
+              <b>No radius holds 95 %</b>; if it is not lost, {length(p.radii?.radius95M ?? Infinity)}
+            </>
+          )}
+          , limit {length(p.alertLimitM)}
         </span>
         <span class="say">
           {whereabouts(p)} {silent && <em>{silent}</em>} <small>{remarks(k)}</small>

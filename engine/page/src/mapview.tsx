@@ -10,7 +10,7 @@ import { boxOf, drawGround, placeBelief, toEN, type Placed, type View } from "./
 import { close, closed, corners, point, spot, tool } from "./pointing";
 import type { EN, LonLat } from "./project";
 import { dark } from "./settings";
-import { onRoads } from "./worry";
+import { onRoads, radiiHold } from "./worry";
 
 const view = signal<View>({ e: 0, n: 0, mPerPx: 2, width: 0, height: 0 });
 /** Whether the map goes along with the vehicle. */
@@ -287,7 +287,7 @@ function Legend({ g }: { g: Ground }) {
       )}
       {p && (
         <ul>
-          <li><i class="sign circle" /> 95 % circle</li>
+          <li><i class="sign circle" /> 95 % circle{radiiHold(p) ? "" : ", if not lost"}</li>
           {p.modes.length > 1 && <li><i class="sign disc" /> places, likeliest first</li>}
           {past.value.some((q) => q.located) && <li><i class="sign track" /> track while located</li>}
           {fix.value && <li><i class="sign fix" /> satellite fix</li>}

@@ -7,6 +7,7 @@ import { begin, drawArea, drawBelief, drawCircle, drawMark, drawTrack, type Plac
 import { closed, corners, spot, spotRadiusM } from "./pointing";
 import type { LonLat } from "./project";
 import { dark } from "./settings";
+import { radiiHold } from "./worry";
 
 export function beginTop(canvas: HTMLCanvasElement, v: View, g: Ground, p: Posterior, belief: Placed | undefined) {
   const [ctx, d] = [begin(canvas, v), dark.peek()];
@@ -14,7 +15,7 @@ export function beginTop(canvas: HTMLCanvasElement, v: View, g: Ground, p: Poste
   if (belief) drawBelief(ctx, v, belief, d);
   drawTrack(ctx, v, past.peek().map((q) => (q.located ? at(q.at) : undefined)), d);
   const mean = at(p.mean as LonLat);
-  if (p.radii) drawCircle(ctx, v, mean, p.radii.radius95M, [], d);
+  if (p.radii) drawCircle(ctx, v, mean, p.radii.radius95M, radiiHold(p) ? [] : [3, 5], d);
   if (p.status === Status.LOCATED || p.modes.length < 2) drawMark(ctx, v, mean, "", "cross", d);
   // The likeliest is drawn last, so that it is on top.
   else [...p.modes].reverse().forEach((m, i) => drawMark(ctx, v, at(m.mean as LonLat), String(p.modes.length - i), "disc", d));

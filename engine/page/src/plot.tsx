@@ -1,5 +1,5 @@
 // A figure over time.
-import { useEffect, useRef } from "preact/hooks";
+import { useEffect, useLayoutEffect, useRef } from "preact/hooks";
 import uPlot from "uplot";
 import { figure } from "./format";
 import { dark } from "./settings";
@@ -17,7 +17,8 @@ export function Plot(props: Props) {
   const box = useRef<HTMLDivElement>(null);
   const plot = useRef<uPlot | undefined>(undefined);
   const shape = JSON.stringify([dark.value, props.unit, props.band, props.log, props.lines.map((l) => l.label)]);
-  useEffect(() => {
+  // At once: an effect that waits for a quiet moment leaves a busy page without lines.
+  useLayoutEffect(() => {
     const c = colours();
     const axis = { stroke: c.text, grid: { stroke: c.grid, width: 1 }, ticks: { stroke: c.grid, width: 1 }, font: "11px system-ui, sans-serif" };
     plot.current = new uPlot(
@@ -30,7 +31,7 @@ export function Plot(props: Props) {
         scales: { x: { time: true }, y: props.log ? { distr: 3 } : { range: (_, a, b) => spread(a, b) } },
         axes: [
           { ...axis, space: 70, size: 26, gap: 3, values: (_, ts) => ts.map((t) => new Date(t * 1000).toISOString().slice(11, 19)) },
-          { ...axis, size: 50, gap: 3, space: 24, values: (_, vs) => vs.map((v) => (v === null ? "" : figure(v))) },
+          { ...axis, size: 50, gap: 3, space: 24, values: (_, vs) => labels(vs) },
         ],
         series: [{}, ...props.lines.map((l) => ({ label: l.label, stroke: c[l.colour], width: l.colour === "quiet" ? 1 : 1.8, dash: l.dash, points: { show: false } }))],
         bands: props.band ? [{ series: [3, 2], fill: c.band }] : [],
@@ -59,6 +60,15 @@ export function Plot(props: Props) {
       <div ref={box} role="img" aria-label={`${props.title}, ${props.unit}, over UTC: ${props.says}`} />
     </figure>
   );
+}
+
+/** Figures beside an axis, with as many digits as tell them apart. */
+function labels(vs: (number | null)[]): string[] {
+  for (let digits = 3; ; digits++) {
+    const out = vs.map((v) => (v === null ? "" : figure(v, digits)));
+    const said = out.filter((t) => t);
+    if (digits === 8 || new Set(said).size === said.length) return out;
+  }
 }
 
 /** A range with room; never empty. */

@@ -1,6 +1,6 @@
 // Who must be called next, and why, in words.
 import { AlarmKind, Status, type Alarm, type Posterior } from "../../client/web/leadline/v1/posterior_pb.js";
-import { duration, length, percent } from "./format";
+import { duration, length, percent, utcTime } from "./format";
 
 /** What the page knows of a vehicle. */
 export type Known = {
@@ -33,8 +33,17 @@ export function silence(k: Known, now: number): number {
   return old >= 0 && old < 86400 ? old + since : since;
 }
 
-/** The 95 % radius as a multiple of the alert limit. */
-export const ratio = (p: Posterior) => (p.radii?.radius95M ?? Infinity) / (p.alertLimitM || 25);
+/**
+ * Whether the radii say where the vehicle is: they are of one that is not lost, and
+ * of one that is lost with more than what a 95 % radius leaves out they hold less.
+ */
+export const radiiHold = (p: Posterior) => !p.lostAlarm && p.lost <= 0.05;
+
+/** The 95 % radius, m; that of a vehicle that may be lost has no bound. */
+export const radius95 = (p: Posterior) => (radiiHold(p) ? (p.radii?.radius95M ?? Infinity) : Infinity);
+
+/** The same as a multiple of the alert limit. */
+export const ratio = (p: Posterior) => radius95(p) / (p.alertLimitM || 25);
 
 /** Greater is worse: first by what is wrong, then by how far beyond the limit. */
 export function worry(k: Known, now: number): number {
@@ -88,7 +97,8 @@ export const onRoads = (p: Posterior) => p.edgeCount > 0;
 /** Where a vehicle may be, in a sentence. */
 export function whereabouts(p: Posterior): string {
   const limit = length(p.radii?.radius95M ?? Infinity);
-  if (p.lostAlarm) return `Lost: neither the map nor its own motion says where it is (${percent(p.lost)}).`;
+  if (p.lostAlarm && p.lost >= 0.5) return `Lost, at ${percent(p.lost)}: neither the map nor its own motion says where it is.`;
+  if (p.lostAlarm) return `It was lost, and has not been located since; that it still is, is ${percent(p.lost)} probable.`;
   if (p.status === Status.OFF_MAP) return `Off the map, most probably (${percent(p.offMap)}).`;
   const tell = (all: [string, number][]) => all.slice(0, 3).map(([name, mass]) => `${roadName(name)} ${percent(mass)}`).join(", ");
   if (p.status === Status.LOCATED) {
@@ -121,7 +131,8 @@ export function silenceWords(k: Known, now: number): string {
 export function remarks(k: Known): string {
   if (k.over) return k.over;
   const out: string[] = [];
+  if (!k.posterior.lostAlarm && !radiiHold(k.posterior)) out.push(`That it is lost is ${percent(k.posterior.lost)} probable.`);
   if (k.posterior.ageS < -5) out.push(`Its clock is ${duration(k.posterior.ageS)} ahead of the server's.`);
-  else if (k.posterior.ageS >= 86400) out.push(`Its clock is ${duration(k.posterior.ageS)} behind the server's.`);
+  else if (k.posterior.ageS >= 86400) out.push(`Its times are of ${utcTime(k.posterior.time!).slice(0, 10)}: a recording, or a clock that is wrong.`);
   return out.join(" ");
 }
