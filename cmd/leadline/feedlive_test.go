@@ -7,7 +7,6 @@ import (
 	"io"
 	"math"
 	"net"
-	"os"
 	"os/exec"
 	"path/filepath"
 	"strconv"
@@ -15,8 +14,6 @@ import (
 	"syscall"
 	"testing"
 	"time"
-
-	"golang.org/x/sys/unix"
 
 	"leadline/engine/geo"
 	"leadline/engine/sensor"
@@ -243,19 +240,8 @@ func TestFeedLive(t *testing.T) {
 	}
 
 	// And from a serial port, which ends it.
-	port0, err := os.OpenFile("/dev/ptmx", os.O_RDWR, 0)
-	if err != nil {
-		t.Fatal(err)
-	}
-	defer port0.Close()
-	if err := unix.IoctlSetPointerInt(int(port0.Fd()), unix.TIOCSPTLCK, 0); err != nil {
-		t.Fatal(err)
-	}
-	n, err := unix.IoctlGetInt(int(port0.Fd()), unix.TIOCGPTN)
-	if err != nil {
-		t.Fatal(err)
-	}
-	f = feedFrom(t, args(fmt.Sprintf("serial:/dev/pts/%d?baud=115200", n))...)
+	port0, device := pseudoTerminal(t)
+	f = feedFrom(t, args("serial:"+device+"?baud=115200")...)
 	stop = instrument(t, port0, at)
 	now = heard(t, srv, now.accepted(t)+40)
 	there(now)
