@@ -51,13 +51,13 @@ survive:
 bench:
 	$(GO) test -run '^$$' -bench . -benchmem ./...
 
-# fetch brings outside data for the tests, see DATA.md, the library that reads a
-# compiled road map a second time, and the packages of the JavaScript client and
+# fetch brings outside data for the tests, see DATA.md, the libraries that read a
+# compiled road map and a track's Parquet file a second time, and the packages of the JavaScript client and
 # of the page.
 fetch: fetch-arrow fetch-clients fetch-page
 	$(GO) run ./fixtures/outside/fetch
 
-ARROW_JS = apache-arrow@21.2.0
+ARROW_JS = apache-arrow@21.2.0 hyparquet@1.31.5
 fetch-arrow:
 	npm install --silent --no-audit --no-fund --no-save --prefix build/outside $(ARROW_JS)
 

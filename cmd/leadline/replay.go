@@ -40,6 +40,7 @@ type replayOptions struct {
 	truthOffset   []float64
 	estimateTruth bool
 	holdOutFixes  bool
+	also          []string
 }
 
 func replayCommand() *cobra.Command {
@@ -72,6 +73,7 @@ what is done; the same command goes on from there.`,
 	f.Float64SliceVar(&o.truthOffset, "truth-offset", nil, "where and when the truth is measured: FORWARD,RIGHT,LATE in metres from the vehicle's reference point and seconds")
 	f.BoolVar(&o.estimateTruth, "estimate-truth-offset", false, "say in the score what that might be; it is not taken off")
 	f.BoolVar(&o.holdOutFixes, "hold-out-fixes", false, "compare each satellite fix with what was known just before it")
+	f.StringSliceVar(&o.also, "also", nil, "write tracks in these forms, too: gpx, parquet")
 	settable(c, "max-cells")
 	return c
 }
@@ -150,6 +152,19 @@ func (o *replayOptions) job(maps map[string]*mapFile, paths []string) (*sweep.Jo
 		Again:         o.again || o.explain != "" || o.diagnose == diagnoseAlways,
 		EstimateTruth: o.estimateTruth, HoldOutFixes: o.holdOutFixes,
 		Version: versionText(), Program: programSHA256(), Command: append([]string{"leadline"}, os.Args[1:]...),
+	}
+	for _, form := range o.also {
+		switch form {
+		case "gpx":
+			job.GPX = true
+		case "parquet":
+			job.Parquet = true
+		default:
+			return nil, fmt.Errorf("--also %q is no form of a track: give gpx or parquet", form)
+		}
+	}
+	if len(o.also) > 0 && o.dir == "" {
+		return nil, errors.New("--also needs --out, where tracks are written")
 	}
 	switch n := len(o.truthOffset); {
 	case n == 3:

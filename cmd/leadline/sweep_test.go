@@ -27,6 +27,11 @@ func TestSweepAndCompare(t *testing.T) {
 	sweep := []string{"replay", drive, "--map", town, "--out", out, "--set", "vehicle.corner_sigma_m=2", "--set", "vehicle.corner_sigma_m=3"}
 	status(exitDone, "2 settings tried so far, 2 runs here, 0 of them from an earlier job", sweep...)
 	status(exitDone, "2 of them from an earlier job", sweep...)
+	forms := append(sweep, "--also", "gpx,parquet")
+	status(exitDone, "0 of them from an earlier job", forms...) // which has not left them
+	status(exitDone, "2 of them from an earlier job", forms...)
+	status(exitBad, "is no form of a track", append(sweep, "--also", "csv")...)
+	status(exitBad, "--also needs --out", "replay", drive, "--map", town, "--also", "gpx")
 	names, err := results.Settings(out)
 	if err != nil || len(names) != 2 {
 		t.Fatalf("%v, %v", names, err)

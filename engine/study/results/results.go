@@ -29,6 +29,9 @@ const (
 	ScoreFile  = "score.json"
 	TimingFile = "timing.json"
 	TableFile  = "track.csv"
+
+	GPXFile     = "track.gpx"     // if asked for
+	ParquetFile = "track.parquet" // if asked for
 )
 
 // Run is what a run was made of.

@@ -204,6 +204,11 @@ func (w *work) resume() bool {
 	if results.ReadJSON(filepath.Join(w.out.Dir, results.TimingFile), &w.out.Timing) != nil {
 		return false
 	}
+	for name, wanted := range map[string]bool{results.GPXFile: w.job.GPX, results.ParquetFile: w.job.Parquet} {
+		if _, err := os.Stat(filepath.Join(w.out.Dir, name)); wanted && err != nil {
+			return false
+		}
+	}
 	w.out.Run.Accepted, w.out.Run.Refused, w.out.Run.FirstRefusal = r.Accepted, r.Refused, r.FirstRefusal
 	w.out.Score, w.out.Resumed = r.Score, true
 	// Who asks, and whether the drive is held out, may be new.

@@ -53,6 +53,16 @@ func newSinks(w *work) (*sinks, error) {
 		{results.TableFile, func(f io.Writer) (track.Writer, error) { return track.NewTable(f) }},
 		{"track.geojson", func(f io.Writer) (track.Writer, error) { return track.NewFeatures(f, w.unit.drive.Name, w.truth) }},
 	}
+	if w.job.GPX {
+		writers = append(writers, writer{results.GPXFile, func(f io.Writer) (track.Writer, error) {
+			return track.NewGPX(f, w.unit.drive.Name, w.job.Version, w.truth)
+		}})
+	}
+	if w.job.Parquet {
+		writers = append(writers, writer{results.ParquetFile, func(f io.Writer) (track.Writer, error) {
+			return track.NewParquet(f, w.unit.drive.Name, w.job.Version), nil
+		}})
+	}
 	for _, x := range writers {
 		f, err := os.Create(filepath.Join(w.dir, x.name))
 		if err != nil {

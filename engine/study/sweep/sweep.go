@@ -61,6 +61,9 @@ type Job struct {
 	EstimateTruth bool
 	HoldOutFixes  bool
 
+	// GPX and Parquet have tracks written in these forms, too.
+	GPX, Parquet bool
+
 	Version, Program string
 	Command          []string
 	// Meter, if set, is told how far it is.

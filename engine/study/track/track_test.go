@@ -4,17 +4,24 @@ import (
 	"bytes"
 	"encoding/csv"
 	"encoding/json"
+	"encoding/xml"
+	"fmt"
 	"image/color"
 	"image/png"
 	"io"
 	"math"
+	"os"
+	"os/exec"
+	"path/filepath"
 	"strconv"
 	"strings"
 	"testing"
+	"time"
 
 	"leadline/engine/geo"
 	"leadline/engine/study/score"
 	"leadline/engine/summary"
+	"leadline/fixtures/outside"
 )
 
 var frame = geo.NewFrame(geo.FromDegrees(-30, 45)) // in the open Atlantic
@@ -262,5 +269,108 @@ func TestPicture(t *testing.T) {
 	}
 	if err := (&Track{}).Picture(&bytes.Buffer{}, roads); err == nil {
 		t.Error("a picture of nothing")
+	}
+}
+
+// TestGPXByGDAL lets GDAL read a track's GPX: positions, times and comments are
+// those of the table. No copy of the GPX schema is within reach of the tests; the
+// order of elements is the schema's as it is known from memory.
+func TestGPXByGDAL(t *testing.T) {
+	tool := outside.Tool(t, "ogrinfo", "gdal-bin")
+	tr := walk()
+	tr.Drive = `a <name> & "more" ` + "\x01"
+	path := filepath.Join(t.TempDir(), "track.gpx")
+	text := written(t, tr, func(w io.Writer) (Writer, error) { return NewGPX(w, tr.Drive, "v<1>", tr.Truth) })
+	if err := os.WriteFile(path, text, 0o600); err != nil {
+		t.Fatal(err)
+	}
+	out, err := exec.Command(tool, "-al", path, "track_points").CombinedOutput()
+	if err != nil || bytes.Contains(out, []byte("ERROR")) {
+		t.Fatalf("%v: %s", err, out)
+	}
+	says := string(out)
+	if n := strings.Count(says, "OGRFeature(track_points)"); n != len(tr.Truth)+len(tr.Posteriors) {
+		t.Errorf("%d points: %s", n, says)
+	}
+	for _, want := range []string{
+		"time (DateTime) = 1970/01/01 00:00:04+00", "cmt (String) = located, 95 % radius 20 m", "cmt (String) = ambiguous, 95 % radius 20 m",
+		"track_seg_id (Integer) = 1", "track_fid (Integer) = 1", "POINT (-30 45.00002",
+	} {
+		if !strings.Contains(says, want) {
+			t.Errorf("GDAL does not say %q of\n%s", want, text)
+		}
+	}
+	if out, err := exec.Command(tool, "-al", path, "tracks").CombinedOutput(); err != nil || !strings.Contains(string(out), "name (String) = a <name> & \"more\" \ufffd truth") {
+		t.Errorf("%v: %s", err, out)
+	}
+	if err := xml.Unmarshal(written(t, &Track{}, func(w io.Writer) (Writer, error) { return NewGPX(w, "", "", nil) }), new(struct{})); err != nil {
+		t.Errorf("of nothing: %v", err)
+	}
+}
+
+// TestParquetJavaScript lets another implementation read a track's Parquet: each
+// column of the table by its name, with the same values, and null where that is
+// empty.
+func TestParquetJavaScript(t *testing.T) {
+	node := outside.Tool(t, "node", "nodejs")
+	dir, err := outside.Dir()
+	if err != nil {
+		t.Fatal(err)
+	}
+	module := filepath.Join(dir, "node_modules", "hyparquet", "src", "hyparquet.js")
+	if _, err := os.Stat(module); err != nil {
+		t.Skipf("outside library hyparquet is not here: make fetch-arrow")
+	}
+	tr := walk()
+	path := filepath.Join(t.TempDir(), "track.parquet")
+	text := written(t, tr, func(w io.Writer) (Writer, error) { return NewParquet(w, tr.Drive, "v"), nil })
+	if err := os.WriteFile(path, text, 0o600); err != nil {
+		t.Fatal(err)
+	}
+	script := fmt.Sprintf(`
+import { parquetReadObjects, parquetMetadata } from %q;
+import { readFileSync } from 'fs';
+const b = readFileSync(%q);
+const file = b.buffer.slice(b.byteOffset, b.byteOffset + b.byteLength);
+const rows = await parquetReadObjects({ file });
+const drive = parquetMetadata(file).key_value_metadata.find(x => x.key === 'drive').value;
+console.log(JSON.stringify({ drive, rows }, (k, v) => typeof v === 'bigint' ? Number(v) : v));`, "file://"+module, path)
+	out, err := exec.Command(node, "--input-type=module", "-e", script).CombinedOutput()
+	if err != nil {
+		t.Fatalf("%v: %s", err, out)
+	}
+	var got struct {
+		Drive string
+		Rows  []map[string]any
+	}
+	if err := json.Unmarshal(out, &got); err != nil {
+		t.Fatalf("%v: %s", err, out)
+	}
+	lines, err := csv.NewReader(bytes.NewReader(written(t, tr, table))).ReadAll()
+	if err != nil || len(got.Rows) != len(lines)-1 || got.Drive != tr.Drive {
+		t.Fatalf("%d rows of %q, %v", len(got.Rows), got.Drive, err)
+	}
+	for i, line := range lines[1:] {
+		if len(got.Rows[i]) != len(columns) {
+			t.Errorf("row %d has %d columns", i, len(got.Rows[i]))
+		}
+		for k, name := range columns {
+			switch v := got.Rows[i][name].(type) {
+			case nil:
+				if line[k] != "" {
+					t.Errorf("row %d, %s: null, want %s", i, name, line[k])
+				}
+			case float64:
+				if want, err := strconv.ParseFloat(line[k], 64); err != nil || math.Abs(v-want) > 1e-9*math.Max(1, math.Abs(want))+5e-9 {
+					t.Errorf("row %d, %s: %v, want %s", i, name, v, line[k])
+				}
+			case string:
+				if at, err := time.Parse(time.RFC3339Nano, v); name == "time" && (err != nil || stamp(at.UnixNano()) != line[k]) || name != "time" && v != line[k] {
+					t.Errorf("row %d, %s: %q, want %s", i, name, v, line[k])
+				}
+			default:
+				t.Errorf("row %d, %s: %T", i, name, v)
+			}
+		}
 	}
 }
