@@ -18,7 +18,8 @@ import (
 // A checkpoint bounds what a server that starts has to replay, and lets older
 // records go. A drive writes one when it has taken something since the last and
 // that is checkpointEvery ago, or checkpointAfter records; when the journal
-// needs the room; and when the server stops in order.
+// needs the room; when too much would have to be computed again (see debt.go);
+// and when the server stops in order.
 const (
 	checkpointEvery = 30 * time.Second
 	checkpointAfter = 20_000
@@ -49,7 +50,10 @@ type checks struct {
 	since   int        // how many it has taken since the last checkpoint
 	last    time.Time
 	writing bool
-	pressed atomic.Bool // the journal needs room
+	pressed atomic.Bool  // the journal needs room, or too much would have to be replayed
+	debt    atomic.Int64 // what it would take to replay, ns
+	size    atomic.Int64 // of the last checkpoint
+	asked   time.Time    // when one was asked for, for its debt; srv.mu guards it
 }
 
 func (c *checks) took(at journal.At) {
@@ -81,6 +85,8 @@ func (o *owner) checkpoint(done func()) {
 	data = append(append(data, head...), o.sess.(checkpointer).Checkpoint()...)
 	c.writing, c.since, c.last = true, 0, o.srv.cfg.Now()
 	c.pressed.Store(false)
+	c.debt.Store(0)
+	c.size.Store(int64(len(data)))
 	r, line, from := o.rec, o.rec.line, c.taken.Pack
 	alone := !r.busy() // nothing is on its way: what comes is after it
 	r.waiting = append(r.waiting, entry{true, func() { c.writing, c.since = false, c.since-1 }, func(error) { c.writing = false }})

@@ -5,6 +5,7 @@ import (
 	"slices"
 	"strconv"
 	"strings"
+	"time"
 
 	"google.golang.org/protobuf/types/known/timestamppb"
 
@@ -44,6 +45,7 @@ func (o *owner) takeBatch(b *leadlinev1.Batch) {
 		return
 	}
 	defer o.srv.load.work()()
+	defer o.owes(time.Now())
 	r := &leadlinev1.Receipt{Sequence: b.GetSequence()}
 	var n news
 	for i, m := range b.GetMeasurements() {
