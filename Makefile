@@ -5,6 +5,7 @@
 GO       ?= go
 BUF       = $(GO) tool -modfile=tools/buf.mod buf
 GOFUMPT   = $(GO) tool -modfile=tools/gofumpt.mod gofumpt
+VECTORS   = $(GO) run -modfile=tools/avo.mod tools/vectors/main.go -pkg kernel
 LINTER    = $(GO) tool -modfile=tools/lint.mod golangci-lint
 PROTOS    = $(wildcard proto/leadline/v1/*.proto)
 VERSION  ?= $(shell git describe --tags --always --dirty 2>/dev/null || echo unknown)
@@ -14,7 +15,7 @@ FUZZ_TIME ?= 60s
 # the code. A tree may be named before it exists.
 RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/livelog/... ./engine/study/sweep ./engine/study/forecast ./engine/study/tune ./engine/journal/... ./cmd/...
 
-.PHONY: build test race fuzz credibility survive bench fetch fetch-arrow fetch-clients fetch-page page page-check generate generate-check \
+.PHONY: build test race fuzz credibility survive bench fetch fetch-arrow fetch-clients fetch-page page page-check generate generate-check vectors \
 	generate-clients generate-clients-check format format-check vet lint lint-only vuln licences licences-check clean
 
 # build makes one static binary.
@@ -68,10 +69,14 @@ fetch-clients:
 # generate writes the Go code of the API beside its .proto files, and the
 # messages and types of the clients in other languages, and the page, which holds
 # them; and adds what is new to the API that tests keep from being broken.
-generate: generate-clients page
+generate: generate-clients page vectors
 	$(BUF) lint proto
 	$(BUF) generate proto --template proto/buf.gen.yaml
 	LEADLINE_REWRITE=added $(GO) test ./proto/... -run TestNothingBreaks
+
+# vectors writes the loops of engine/kernel for amd64.
+vectors:
+	$(VECTORS) -out engine/kernel/vectors_amd64.s -stubs engine/kernel/vectors_amd64.go
 
 # generate-clients needs protoc, of Debian's protobuf-compiler, and npm.
 generate-clients: fetch-clients
@@ -116,6 +121,9 @@ else
 	$(BUF) generate proto --template proto/buf.gen.yaml -o build/_generated
 	diff -r -x '*.proto' -x 'buf*.yaml' -x 'doc.go' -x '*_test.go' -x testdata proto build/_generated/proto
 endif
+	mkdir -p build/_generated
+	$(VECTORS) -out build/_generated/vectors_amd64.s -stubs build/_generated/vectors_amd64.go
+	for f in vectors_amd64.s vectors_amd64.go; do diff -I '^// Code generated' build/_generated/$$f engine/kernel/$$f || exit 1; done
 
 # format rewrites; format-check names what is not formatted and fails.
 format:

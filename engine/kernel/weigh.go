@@ -4,7 +4,7 @@ package kernel
 // least. No log is NaN or above most where the mass is not; dst may be mass.
 func Weigh(dst, mass, logs []float64, most, least float64) {
 	mass, logs = mass[:len(dst)], logs[:len(dst)]
-	weighPlain(dst, mass, logs, most, least, 0)
+	weigh(dst, mass, logs, most, least)
 }
 
 // weighPlain is Weigh in plain Go, from index i on.

@@ -1,0 +1,29 @@
+package kernel
+
+import "golang.org/x/sys/cpu"
+
+// vectors is whether the CPU has AVX2 and the system keeps its registers;
+// GODEBUG=cpu.avx2=off switches it off.
+var vectors = cpu.X86.HasAVX2
+
+const valueBytes = 8
+
+func spread(dst, src []float64, at, stride int, weight []float64) {
+	n := 0
+	if vectors {
+		if n = len(dst) &^ 3; n > 0 {
+			spreadAVX2(&dst[0], &src[at], &weight[0], n, stride*valueBytes, len(weight)-1)
+		}
+	}
+	spreadPlain(dst, src, at, stride, weight, n)
+}
+
+func weigh(dst, mass, logs []float64, most, least float64) {
+	n := 0
+	if vectors {
+		if n = len(dst) &^ 3; n > 0 {
+			weighAVX2(&dst[0], &mass[0], &logs[0], n, most, least)
+		}
+	}
+	weighPlain(dst, mass, logs, most, least, n)
+}

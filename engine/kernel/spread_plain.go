@@ -1,7 +1,0 @@
-//go:build !amd64
-
-package kernel
-
-func spread(dst, src []float64, at, stride int, weight []float64) {
-	spreadPlain(dst, src, at, stride, weight, 0)
-}

@@ -1,0 +1,117 @@
+package kernel
+
+import (
+	"math"
+	"math/rand/v2"
+	"testing"
+)
+
+// sameBits fails unless two slices are the same, bit for bit.
+func sameBits(t *testing.T, what string, got, want []float64) {
+	t.Helper()
+	for i := range want {
+		if math.Float64bits(got[i]) != math.Float64bits(want[i]) {
+			t.Fatalf("%s: value %d of %d is %v (%#x), want %v (%#x)", what, i, len(want), got[i], math.Float64bits(got[i]), want[i], math.Float64bits(want[i]))
+		}
+	}
+}
+
+// awkward are values at which vector code goes wrong where it does.
+var awkward = []float64{0, 5e-324, 1e-310, 0x1p-1022, 1e-300, 1e-250, 1, 1 + 0x1p-52, 1e300}
+
+// TestSpreadBits compares with plain Go, for every length of a tail, strides to
+// the next value and to the next row, and kernels of one weight and more; and with
+// a sum written another way.
+func TestSpreadBits(t *testing.T) {
+	const seed = 3
+	rng := rand.New(rand.NewPCG(seed, 1))
+	for n := range 75 {
+		for _, stride := range []int{1, 32} {
+			for _, reach := range []int{0, 1, 2, 7} {
+				at := reach * stride
+				src := make([]float64, at+n+reach*stride)
+				for i := range src {
+					src[i] = math.Exp(-700 * rng.Float64())
+					if rng.IntN(4) == 0 {
+						src[i] = awkward[rng.IntN(len(awkward))]
+					}
+				}
+				weight := make([]float64, reach+1)
+				for i := range weight {
+					weight[i] = math.Exp(-float64(i*i) * rng.Float64())
+				}
+				got, want := make([]float64, n), make([]float64, n)
+				Spread(got, src, at, stride, weight)
+				spreadPlain(want, src, at, stride, weight, 0)
+				sameBits(t, "Spread", got, want)
+				for i := range got {
+					sum := 0.0
+					for k := -reach; k <= reach; k++ {
+						sum += src[at+i+k*stride] * weight[max(k, -k)]
+					}
+					if math.Abs(got[i]-sum) > 1e-14*sum {
+						t.Fatalf("Spread over %d values by %d at stride %d: %v, want %v", n, reach, stride, got[i], sum)
+					}
+				}
+			}
+		}
+	}
+}
+
+// TestWeighBits compares with plain Go, for every length of a tail, over all
+// arguments at which Exp changes its way: denormal results, 0, -Inf.
+func TestWeighBits(t *testing.T) {
+	const seed = 4
+	rng := rand.New(rand.NewPCG(seed, 1))
+	logs := []float64{0, math.Copysign(0, -1), -0x1p-60, -0.3465735902799726, -0.34657359027997264, -1, -707.9, -708.4, -708.5, -744.4, -745.1, -745.13, -745.2, -745.2000001, -746, -1e4, -1e300, math.Inf(-1)}
+	for range 4000 {
+		logs = append(logs, -760*rng.Float64(), -rng.ExpFloat64())
+	}
+	for _, most := range []float64{0, 3.7, -1e5} {
+		shifted := make([]float64, len(logs))
+		mass := make([]float64, len(logs))
+		for i, l := range logs {
+			shifted[i] = l + most
+			mass[i] = rng.Float64()
+			if rng.IntN(4) == 0 {
+				mass[i] = awkward[rng.IntN(len(awkward))]
+			}
+			if mass[i] < 1e-250 && rng.IntN(2) == 0 {
+				shifted[i] = most + 1e3 // above, where it does not matter
+			}
+		}
+		for from := 0; from < len(logs); {
+			n := min(1+rng.IntN(70), len(logs)-from)
+			got, want := make([]float64, n), make([]float64, n)
+			Weigh(got, mass[from:], shifted[from:], most, 1e-250)
+			weighPlain(want, mass[from:], shifted[from:], most, 1e-250, 0)
+			sameBits(t, "Weigh", got, want)
+			Weigh(mass[from:from+n], mass[from:], shifted[from:], most, 1e-250)
+			sameBits(t, "Weigh in place", mass[from:from+n], want)
+			from += n
+		}
+	}
+}
+
+func BenchmarkVectors(b *testing.B) {
+	const n = 1 << 20
+	src, dst, logs := make([]float64, n), make([]float64, n), make([]float64, n)
+	rng := rand.New(rand.NewPCG(1, 1))
+	for i := range src {
+		src[i], logs[i] = rng.Float64(), -20*rng.Float64()
+	}
+	weight := []float64{0.5, 0.2, 0.05}
+	run := func(name string, f func()) {
+		b.Run(name, func(b *testing.B) {
+			for b.Loop() {
+				f()
+			}
+			b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N)/n, "ns/cell")
+		})
+	}
+	run("copy", func() { copy(dst, src) })
+	run("spread", func() { Spread(dst[64:n-64], src, 64, 32, weight) })
+	run("spread-plain", func() { spreadPlain(dst[64:n-64], src, 64, 32, weight, 0) })
+	run("weigh", func() { Weigh(dst, src, logs, 0, 1e-250) })
+	run("weigh-plain", func() { weighPlain(dst, src, logs, 0, 1e-250, 0) })
+}
