@@ -45,7 +45,8 @@ var mayImport = map[string][]string{
 	"engine/journal":           {},
 	"engine/server": {
 		"engine/session", "engine/traffic", "engine/sensor", "engine/summary", "engine/monitor",
-		"engine/filter", "engine/geo", "engine/journal", "engine/wire", "engine/server/web", "engine/server/identity", "engine/server/operate", api,
+		"engine/filter", "engine/geo", "engine/journal", "engine/wire", "engine/server/web", "engine/server/identity", "engine/server/operate",
+		"engine/study/forecast", api,
 	},
 	"engine/server/web":      {api},
 	"engine/server/identity": {},

@@ -31,7 +31,7 @@ var plain = map[string]any{
 	"region_fractions": 0.5, "integrity_risk": 0.01, "depth_below_transducer_m": 20.0, "page_token": "", "resume_token": "",
 	"area_probability": 0.5, "predict_to_now": false, "check": false, "replace": true, "status_changes_only": false,
 	"detail": protoreflect.EnumNumber(leadlinev1.Detail_DETAIL_REGION), "sha256": strings.Repeat("0", 64),
-	"acknowledged": uint64(0),
+	"acknowledged": uint64(0), "route_file": []byte(`{"type":"LineString","coordinates":[[5,53],[5.01,53]]}`),
 }
 
 // filled makes messages of a type with every field set, one for each way to

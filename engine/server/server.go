@@ -42,6 +42,7 @@ type Server struct {
 	serving         atomic.Bool   // it has begun to listen
 	streams         atomic.Int64
 	drawing         chan struct{} // and one a map being drawn
+	forecasting     chan struct{} // and one a forecast being made
 	hub             *hub
 	alarms          *alarmBook
 	atlas           *atlas
@@ -87,6 +88,7 @@ func New(cfg Config) (*Server, error) {
 		predictions: make(chan struct{}, cfg.Limits.Predictions),
 		searching:   make(chan struct{}, searchesAtOnce),
 		drawing:     make(chan struct{}, drawnAtOnce),
+		forecasting: make(chan struct{}, forecastsAtOnce),
 		draining:    make(chan struct{}),
 		owners:      map[string]*owner{},
 		kept:        map[string]*kept{},

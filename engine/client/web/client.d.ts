@@ -86,6 +86,11 @@ export class Client {
             input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/draw_pb.js").DrawMapRequest>;
             output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/draw_pb.js").DrawMapResponse>;
         };
+        forecast: {
+            methodKind: "server_streaming";
+            input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/forecast_pb.js").ForecastRequest>;
+            output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/forecast_pb.js").ForecastResponse>;
+        };
         listSuites: {
             methodKind: "unary";
             input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("@bufbuild/protobuf").Message<"leadline.v1.ListSuitesRequest">>;

@@ -59,46 +59,75 @@ func fisher(l *linearized, r int) float64 {
 	return power * sum * h
 }
 
+// arcs are the angles of radius's rule with its weights: of (0, π/2); the narrower
+// axis is b, so that the peak is as wide as a.
+var arcs = func() (out [201]struct{ sin, cos, weight float64 }) {
+	n := len(out) - 1
+	for i := range out {
+		s, c := math.Sincos(math.Pi / 2 * float64(i) / float64(n))
+		w := 2.0
+		switch {
+		case i == 0 || i == n:
+			w = 1
+		case i%2 == 1:
+			w = 4
+		}
+		out[i].sin, out[i].cos, out[i].weight = s, c, w*c*math.Pi/2/float64(n)/3
+	}
+	return out
+}()
+
 // radius is that of the circle around the mean of a normal distribution that
 // holds a probability:
 //
 //	P(|x| ≤ r) = ∫ N(u; 0, a²)·(2Φ(√(r²-u²)/b) - 1) du over |u| ≤ r,
 //
 // a and b the standard deviations along the axes, by Simpson's rule in the angle
-// u = r·sin φ and bisection.
+// u = r·sin φ, and the Illinois rule (Dowell & Jarratt, BIT 11, 1971) on -ln(1 - P)
+// over r², which is a straight line for b = a. That circle is the largest: r lies
+// below a√(-2 ln(1 - P)).
 func radius(c summary.Cov, probability float64) float64 {
 	a, b := c.Axes()
 	if !(a > 0) {
 		return 0
 	}
-	inside := func(r float64) float64 {
-		const n = 200 // of (0, π/2); the narrower axis is b, so the peak is as wide as a
-		sum := 0.0
-		for i := range n + 1 {
-			s, cos := math.Sincos(math.Pi / 2 * float64(i) / n)
-			u := r * s / a
-			f := math.Exp(-u*u/2) * cos
+	wanted := -math.Log1p(-probability)
+	over := func(squared float64) float64 {
+		r, sum := math.Sqrt(squared), 0.0
+		for _, arc := range arcs {
+			u := r * arc.sin / a
+			f := math.Exp(-u*u/2) * arc.weight
 			if b > 0 {
-				f *= math.Erf(r * cos / b / math.Sqrt2)
-			}
-			switch {
-			case i == 0 || i == n:
-			case i%2 == 1:
-				f *= 4
-			default:
-				f *= 2
+				f *= math.Erf(r * arc.cos / b / math.Sqrt2)
 			}
 			sum += f
 		}
-		return 2 * r / (a * math.Sqrt(2*math.Pi)) * sum * (math.Pi / 2 / n) / 3
+		p := 2 * r / (a * math.Sqrt(2*math.Pi)) * sum
+		return -math.Log1p(-math.Min(p, 1-1e-15)) - wanted // the rule errs, and p is below 1
 	}
-	lo, hi := 0.0, 10*a
-	for range 60 {
-		if mid := (lo + hi) / 2; inside(mid) < probability {
-			lo = mid
+	lo, hi := 0.0, 2*a*a*wanted
+	below, above := -wanted, over(hi)
+	if !(above > 0) {
+		return math.Sqrt(hi)
+	}
+	for last, side := hi, 0.0; ; {
+		at := (lo*above - hi*below) / (above - below)
+		if math.Abs(at-last) <= 1e-13*hi || !(at > lo && at < hi) {
+			return math.Sqrt(at)
+		}
+		last = at
+		y := over(at)
+		again := y*side > 0 // the same end moves as before: the other one weighs half
+		if side = y; y < 0 {
+			lo, below = at, y
+			if again {
+				above /= 2
+			}
 		} else {
-			hi = mid
+			hi, above = at, y
+			if again {
+				below /= 2
+			}
 		}
 	}
-	return hi
 }

@@ -27,6 +27,9 @@ type Options struct {
 	MaxCells int
 	// Progress, if set, is called now and then.
 	Progress func(done, total int)
+	// Stop, if set, is asked often, also by several goroutines where there are runs:
+	// an error of it ends the forecast.
+	Stop func() error
 }
 
 // Bounds of what is asked for.
@@ -134,8 +137,18 @@ func Of(p *Plan, o Options) (*Forecast, error) {
 	}
 	with, suite := *p, *p.Suite
 	suite.Vehicle.AlertLimitM = o.LimitM
-	with.Suite = &suite
+	with.Suite, with.stop = &suite, o.Stop
 	p = &with
+	stretches := 0
+	if !o.NoAmbiguity {
+		stretches = len(p.stretches(o))
+	}
+	steps := 1 + o.Runs + stretches + mostStretches
+	told := func(done int) {
+		if o.Progress != nil {
+			o.Progress(done, steps)
+		}
+	}
 	f := &Forecast{
 		LengthM: p.Path.lengthM, DurationS: p.Path.durationS(), LimitM: o.LimitM, Risk: p.Suite.Vehicle.IntegrityRisk,
 		StartM: p.Start, RatesHz: p.Rates(), LeftOut: p.LeftOut(), Runs: o.Runs, StretchM: o.StretchM, SearchM: o.SearchM,
@@ -144,6 +157,7 @@ func Of(p *Plan, o Options) (*Forecast, error) {
 	if err != nil {
 		return nil, err
 	}
+	told(1)
 	n := max(1, int(math.Ceil(p.Path.lengthM/o.SampleM)))
 	ways := make([]float64, n+1)
 	for i := range ways {
@@ -152,7 +166,7 @@ func Of(p *Plan, o Options) (*Forecast, error) {
 	var all [][]seen
 	if o.Runs > 0 {
 		f.Seed = &o.Seed
-		if all, err = p.runs(ways, o.Runs, o.Seed, o.MaxCells, o.Progress); err != nil {
+		if all, err = p.runs(ways, o.Runs, o.Seed, o.MaxCells, func(done int) { told(1 + done) }); err != nil {
 			return nil, err
 		}
 	}
@@ -168,7 +182,7 @@ func Of(p *Plan, o Options) (*Forecast, error) {
 	}
 	f.sum()
 	if !o.NoAmbiguity {
-		if err := f.lookAround(p, o); err != nil {
+		if err := f.lookAround(p, o, func(done int) { told(1 + o.Runs + done) }); err != nil {
 			return nil, err
 		}
 	}
@@ -178,11 +192,13 @@ func Of(p *Plan, o Options) (*Forecast, error) {
 		byLength[i] = &f.Weak[i]
 	}
 	slices.SortStableFunc(byLength, func(a, b *Stretch) int { return cmp.Compare(b.ToM-b.FromM, a.ToM-a.FromM) })
-	for _, s := range byLength[:min(len(byLength), mostStretches)] {
+	for i, s := range byLength[:min(len(byLength), mostStretches)] {
 		if err := p.help(s, f.Samples, o); err != nil {
 			return nil, err
 		}
+		told(1 + o.Runs + stretches + i + 1)
 	}
+	told(steps)
 	return f, nil
 }
 
@@ -224,11 +240,19 @@ func (f *Forecast) sum() {
 	f.MedianM, f.Beyond, f.Unprotected = quantile(radii, 0.5), float64(beyond)/n, float64(unprotected)/n
 }
 
-// lookAround looks for alike places, stretch after stretch.
-func (f *Forecast) lookAround(p *Plan, o Options) error {
+// stretches is where those begin that are looked at for alike places.
+func (p *Plan) stretches(o Options) (fromM []float64) {
 	step := math.Max(o.StretchM, p.Path.lengthM/maxStretches)
-	var located []float64
 	for from := 0.0; from < p.Path.lengthM && (from == 0 || p.Path.lengthM-from >= o.StretchM/2); from += step {
+		fromM = append(fromM, from)
+	}
+	return fromM
+}
+
+// lookAround looks for alike places, stretch after stretch.
+func (f *Forecast) lookAround(p *Plan, o Options, told func(done int)) error {
+	var located []float64
+	for i, from := range p.stretches(o) {
 		a, err := p.alike(from, o.StretchM, o.SearchM, o.LimitM, o.MaxCells)
 		if err != nil {
 			return err
@@ -242,6 +266,7 @@ func (f *Forecast) lookAround(p *Plan, o Options) error {
 		if f.MostAmbiguous == nil || a.Ambiguity > *f.MostAmbiguous {
 			f.MostAmbiguous = &a.Ambiguity
 		}
+		told(i + 1)
 	}
 	slices.Sort(located)
 	if m := quantile(located, 0.5); len(located) > 0 && !math.IsInf(m, 1) && m == m {

@@ -26,6 +26,8 @@ type Plan struct {
 	// fixesS are times of single fixes beside the sensors', with their sigma.
 	fixesS    []float64
 	fixSigmaM float64
+	// stop, if set, is asked at each step; an error of it ends what is done.
+	stop func() error
 	// untilS ends the plan before the path does; 0: with the path.
 	untilS float64
 }

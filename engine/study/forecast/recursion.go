@@ -90,6 +90,11 @@ func (b *bound) run(events []sensor.Event) ([]mark, error) {
 	motions := newMotions(prepared)
 	marks := []mark{{0, b.now.wayM, b.cov()}}
 	for i := 0; i < len(prepared); {
+		if b.stop != nil {
+			if err := b.stop(); err != nil {
+				return nil, err
+			}
+		}
 		t := prepared[i].Time
 		if t > b.t {
 			if err := b.move(motions, t); err != nil {

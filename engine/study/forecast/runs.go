@@ -28,7 +28,7 @@ type seen struct {
 // as many at once as there are processors; what comes out does not depend on how
 // many. The start is known to Plan.Start, and the point that is handed over errs
 // by as much.
-func (p *Plan) runs(samples []float64, n int, seed uint64, maxCells int, progress func(done, total int)) ([][]seen, error) {
+func (p *Plan) runs(samples []float64, n int, seed uint64, maxCells int, progress func(done int)) ([][]seen, error) {
 	out, errs := make([][]seen, n), make([]error, n)
 	var wait sync.WaitGroup
 	var mu sync.Mutex
@@ -40,7 +40,7 @@ func (p *Plan) runs(samples []float64, n int, seed uint64, maxCells int, progres
 				if progress != nil {
 					mu.Lock()
 					done++
-					progress(done, n)
+					progress(done)
 					mu.Unlock()
 				}
 			}

@@ -117,6 +117,11 @@ func (w *world) more() bool {
 
 // step goes on to the next word and appends it to the events.
 func (w *world) step() error {
+	if w.stop != nil {
+		if err := w.stop(); err != nil {
+			return err
+		}
+	}
 	t, which := w.due()
 	w.advance(t)
 	if which < 0 {

@@ -32,6 +32,7 @@ const (
 	PositionService_ListMaps_FullMethodName        = "/leadline.v1.PositionService/ListMaps"
 	PositionService_DescribeMap_FullMethodName     = "/leadline.v1.PositionService/DescribeMap"
 	PositionService_DrawMap_FullMethodName         = "/leadline.v1.PositionService/DrawMap"
+	PositionService_Forecast_FullMethodName        = "/leadline.v1.PositionService/Forecast"
 	PositionService_ListSuites_FullMethodName      = "/leadline.v1.PositionService/ListSuites"
 	PositionService_DescribeSuite_FullMethodName   = "/leadline.v1.PositionService/DescribeSuite"
 	PositionService_UploadMap_FullMethodName       = "/leadline.v1.PositionService/UploadMap"
@@ -80,6 +81,8 @@ type PositionServiceClient interface {
 	DescribeMap(ctx context.Context, in *DescribeMapRequest, opts ...grpc.CallOption) (*DescribeMapResponse, error)
 	// DrawMap gives what of a map can be drawn.
 	DrawMap(ctx context.Context, in *DrawMapRequest, opts ...grpc.CallOption) (*DrawMapResponse, error)
+	// Forecast says beforehand how good positions will be along a planned route.
+	Forecast(ctx context.Context, in *ForecastRequest, opts ...grpc.CallOption) (grpc.ServerStreamingClient[ForecastResponse], error)
 	// ListSuites says which suites drives may use.
 	ListSuites(ctx context.Context, in *ListSuitesRequest, opts ...grpc.CallOption) (*ListSuitesResponse, error)
 	// DescribeSuite says what one of them is.
@@ -238,6 +241,25 @@ func (c *positionServiceClient) DrawMap(ctx context.Context, in *DrawMapRequest,
 	return out, nil
 }
 
+func (c *positionServiceClient) Forecast(ctx context.Context, in *ForecastRequest, opts ...grpc.CallOption) (grpc.ServerStreamingClient[ForecastResponse], error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	stream, err := c.cc.NewStream(ctx, &PositionService_ServiceDesc.Streams[2], PositionService_Forecast_FullMethodName, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	x := &grpc.GenericClientStream[ForecastRequest, ForecastResponse]{ClientStream: stream}
+	if err := x.ClientStream.SendMsg(in); err != nil {
+		return nil, err
+	}
+	if err := x.ClientStream.CloseSend(); err != nil {
+		return nil, err
+	}
+	return x, nil
+}
+
+// This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
+type PositionService_ForecastClient = grpc.ServerStreamingClient[ForecastResponse]
+
 func (c *positionServiceClient) ListSuites(ctx context.Context, in *ListSuitesRequest, opts ...grpc.CallOption) (*ListSuitesResponse, error) {
 	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
 	out := new(ListSuitesResponse)
@@ -260,7 +282,7 @@ func (c *positionServiceClient) DescribeSuite(ctx context.Context, in *DescribeS
 
 func (c *positionServiceClient) UploadMap(ctx context.Context, opts ...grpc.CallOption) (grpc.ClientStreamingClient[UploadMapRequest, UploadMapResponse], error) {
 	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
-	stream, err := c.cc.NewStream(ctx, &PositionService_ServiceDesc.Streams[2], PositionService_UploadMap_FullMethodName, cOpts...)
+	stream, err := c.cc.NewStream(ctx, &PositionService_ServiceDesc.Streams[3], PositionService_UploadMap_FullMethodName, cOpts...)
 	if err != nil {
 		return nil, err
 	}
@@ -314,6 +336,8 @@ type PositionServiceServer interface {
 	DescribeMap(context.Context, *DescribeMapRequest) (*DescribeMapResponse, error)
 	// DrawMap gives what of a map can be drawn.
 	DrawMap(context.Context, *DrawMapRequest) (*DrawMapResponse, error)
+	// Forecast says beforehand how good positions will be along a planned route.
+	Forecast(*ForecastRequest, grpc.ServerStreamingServer[ForecastResponse]) error
 	// ListSuites says which suites drives may use.
 	ListSuites(context.Context, *ListSuitesRequest) (*ListSuitesResponse, error)
 	// DescribeSuite says what one of them is.
@@ -368,6 +392,9 @@ func (UnimplementedPositionServiceServer) DescribeMap(context.Context, *Describe
 }
 func (UnimplementedPositionServiceServer) DrawMap(context.Context, *DrawMapRequest) (*DrawMapResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method DrawMap not implemented")
+}
+func (UnimplementedPositionServiceServer) Forecast(*ForecastRequest, grpc.ServerStreamingServer[ForecastResponse]) error {
+	return status.Error(codes.Unimplemented, "method Forecast not implemented")
 }
 func (UnimplementedPositionServiceServer) ListSuites(context.Context, *ListSuitesRequest) (*ListSuitesResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method ListSuites not implemented")
@@ -615,6 +642,17 @@ func _PositionService_DrawMap_Handler(srv interface{}, ctx context.Context, dec 
 	return interceptor(ctx, in, info, handler)
 }
 
+func _PositionService_Forecast_Handler(srv interface{}, stream grpc.ServerStream) error {
+	m := new(ForecastRequest)
+	if err := stream.RecvMsg(m); err != nil {
+		return err
+	}
+	return srv.(PositionServiceServer).Forecast(m, &grpc.GenericServerStream[ForecastRequest, ForecastResponse]{ServerStream: stream})
+}
+
+// This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
+type PositionService_ForecastServer = grpc.ServerStreamingServer[ForecastResponse]
+
 func _PositionService_ListSuites_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
 	in := new(ListSuitesRequest)
 	if err := dec(in); err != nil {
@@ -728,6 +766,11 @@ var PositionService_ServiceDesc = grpc.ServiceDesc{
 		{
 			StreamName:    "Follow",
 			Handler:       _PositionService_Follow_Handler,
+			ServerStreams: true,
+		},
+		{
+			StreamName:    "Forecast",
+			Handler:       _PositionService_Forecast_Handler,
 			ServerStreams: true,
 		},
 		{

@@ -11,6 +11,7 @@ import type { SeeAlarmRequestSchema, SeeAlarmResponseSchema } from "./alarm_pb.j
 import type { DescribeJournalRequestSchema, DescribeJournalResponseSchema, EndDriveRequestSchema, EndDriveResponseSchema, EraseVehicleRequestSchema, EraseVehicleResponseSchema, ListVehiclesRequestSchema, ListVehiclesResponseSchema } from "./fleet_pb.js";
 import type { DescribeMapRequestSchema, DescribeMapResponseSchema, DescribeSuiteRequestSchema, DescribeSuiteResponseSchema, ListMapsRequestSchema, ListMapsResponseSchema, ListSuitesRequestSchema, ListSuitesResponseSchema, UploadMapRequestSchema, UploadMapResponseSchema } from "./map_pb.js";
 import type { DrawMapRequestSchema, DrawMapResponseSchema } from "./draw_pb.js";
+import type { ForecastRequestSchema, ForecastResponseSchema } from "./forecast_pb.js";
 
 /**
  * Describes the file leadline/v1/service.proto.
@@ -163,6 +164,16 @@ export declare const PositionService: GenService<{
     methodKind: "unary";
     input: typeof DrawMapRequestSchema;
     output: typeof DrawMapResponseSchema;
+  },
+  /**
+   * Forecast says beforehand how good positions will be along a planned route.
+   *
+   * @generated from rpc leadline.v1.PositionService.Forecast
+   */
+  forecast: {
+    methodKind: "server_streaming";
+    input: typeof ForecastRequestSchema;
+    output: typeof ForecastResponseSchema;
   },
   /**
    * ListSuites says which suites drives may use.
