@@ -2,6 +2,7 @@ package main
 
 import (
 	"bytes"
+	"errors"
 	"fmt"
 	"io"
 	"os"
@@ -26,7 +27,7 @@ func manifests(t *testing.T) map[string]map[string]any {
 	out := map[string]map[string]any{}
 	for d := yaml.NewDecoder(bytes.NewReader(text)); ; {
 		var m map[string]any
-		if err := d.Decode(&m); err == io.EOF {
+		if err := d.Decode(&m); errors.Is(err, io.EOF) {
 			return out
 		} else if err != nil {
 			t.Fatal(err)

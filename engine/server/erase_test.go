@@ -130,7 +130,7 @@ func TestEraseVehicle(t *testing.T) {
 		}
 		return closed
 	}
-	api := start()
+	start()
 	beside(8)
 	drive("replaced", 9, false)
 	drive("ended", 30, true)
@@ -139,7 +139,7 @@ func TestEraseVehicle(t *testing.T) {
 	if found(t, dir, hint) < 6 {
 		t.Fatal("the vehicle's traces are not found before")
 	}
-	api = start()
+	api := start()
 	r, err := api.EraseVehicle(limited(t), &leadlinev1.EraseVehicleRequest{Vehicle: "tell-tale van"})
 	if err != nil || r.GetDrives() != 3 || r.GetRecords() < 15 {
 		t.Fatalf("erased: %v, %v", r, err)
