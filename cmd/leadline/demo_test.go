@@ -133,6 +133,30 @@ func TestDemoOverRoads(t *testing.T) {
 	needPNG(t, filepath.Join(dir, "given", "invented-van", "track.png"), 4)
 }
 
+// TestDemoAndorra runs the README's second command, some minutes of one core:
+// with LEADLINE_LONG alone.
+func TestDemoAndorra(t *testing.T) {
+	if !long {
+		return
+	}
+	dir := t.TempDir()
+	var got struct {
+		Passed bool
+		Scenes []struct {
+			TrackPNG string `json:"track_png"`
+			Missed   []string
+			Served   struct {
+				Same bool `json:"same_as_replay"`
+			}
+		}
+	}
+	readJSON(t, good(t, "demo", "--andorra", "--out", dir, "--json"), &got)
+	if !got.Passed || len(got.Scenes) != 1 || !got.Scenes[0].Served.Same {
+		t.Fatalf("the demo prints %+v", got)
+	}
+	needPNG(t, got.Scenes[0].TrackPNG, 4)
+}
+
 func TestShellWord(t *testing.T) {
 	for word, want := range map[string]string{"/tmp/a-b.png": "/tmp/a-b.png", "": "''", "a b": "'a b'", "it's": `'it'\''s'`, "$HOME": "'$HOME'", "*": "'*'", "ä": "'ä'"} {
 		if got := shellWord(word); got != want {
