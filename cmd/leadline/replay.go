@@ -11,6 +11,7 @@ import (
 	"os"
 	"os/signal"
 	"path/filepath"
+	"strconv"
 	"strings"
 	"syscall"
 	"time"
@@ -18,6 +19,8 @@ import (
 	"github.com/spf13/cobra"
 
 	"leadline/engine/drivefile"
+	"leadline/engine/sensor"
+	"leadline/engine/study/replay"
 	"leadline/engine/study/results"
 	"leadline/engine/study/score"
 	"leadline/engine/study/sweep"
@@ -41,6 +44,7 @@ type replayOptions struct {
 	estimateTruth bool
 	holdOutFixes  bool
 	also          []string
+	beliefAt      []string
 }
 
 func replayCommand() *cobra.Command {
@@ -74,6 +78,7 @@ what is done; the same command goes on from there.`,
 	f.BoolVar(&o.estimateTruth, "estimate-truth-offset", false, "say in the score what that might be; it is not taken off")
 	f.BoolVar(&o.holdOutFixes, "hold-out-fixes", false, "compare each satellite fix with what was known just before it")
 	f.StringSliceVar(&o.also, "also", nil, "write tracks in these forms, too: gpx, parquet")
+	f.StringArrayVar(&o.beliefAt, "belief-at", nil, "write the whole belief at this time, RFC 3339 or seconds after the first measurement, for a GIS; repeat")
 	settable(c, "max-cells")
 	return c
 }
@@ -166,6 +171,16 @@ func (o *replayOptions) job(maps map[string]*mapFile, paths []string) (*sweep.Jo
 	if len(o.also) > 0 && o.dir == "" {
 		return nil, errors.New("--also needs --out, where tracks are written")
 	}
+	for _, text := range o.beliefAt {
+		m, err := moment(text)
+		if err != nil {
+			return nil, err
+		}
+		job.Beliefs = append(job.Beliefs, m)
+	}
+	if len(o.beliefAt) > 0 && o.dir == "" {
+		return nil, errors.New("--belief-at needs --out, where beliefs are written")
+	}
 	switch n := len(o.truthOffset); {
 	case n == 3:
 		job.TruthOffset = score.Offset{ForwardM: o.truthOffset[0], RightM: o.truthOffset[1], LateS: o.truthOffset[2]}
@@ -188,6 +203,18 @@ func (o *replayOptions) job(maps map[string]*mapFile, paths []string) (*sweep.Jo
 		job.Drives = append(job.Drives, *d)
 	}
 	return job, nil
+}
+
+// moment reads a time of --belief-at.
+func moment(text string) (replay.Moment, error) {
+	if s, err := strconv.ParseFloat(text, 64); err == nil && s >= 0 && s <= 1e9 {
+		return replay.Moment{AfterS: s}, nil
+	}
+	t, err := time.Parse(time.RFC3339Nano, text)
+	if err != nil || t.Unix() < 1 || t.Year() > 2261 {
+		return replay.Moment{}, fmt.Errorf("--belief-at is %q: give a time such as 2030-05-01T12:00:05.5Z, or seconds after the first measurement, such as 5.5", text)
+	}
+	return replay.Moment{At: sensor.Time(t.UnixNano())}, nil
 }
 
 // vary adds the settings that the flags or a file ask for.

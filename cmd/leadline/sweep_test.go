@@ -1,12 +1,16 @@
 package main
 
 import (
+	"math"
 	"os"
 	"path/filepath"
 	"strings"
 	"testing"
+	"time"
 
+	"leadline/engine/geo"
 	"leadline/engine/study/results"
+	"leadline/engine/study/track"
 )
 
 // TestSweepAndCompare: a sweep over the README's drive, taken up again, and a gate
@@ -41,6 +45,12 @@ func TestSweepAndCompare(t *testing.T) {
 	status(exitFailure, `--fail-if "drives == 1" holds`, "compare", a, b, "--fail-if", "drives == 1")
 	status(exitBad, "it ends where", "compare", a, b, "--fail-if", "drives ==")
 	status(exitBad, "holds no results", "compare", dir, b)
+	// A belief on roads, and the posterior of its time.
+	single := filepath.Join(dir, "single")
+	status(exitDone, "", "replay", drive, "--map", town, "--out", single, "--diagnose", "never", "--belief-at", "2030-05-01T12:00:15Z", "--belief-at", "900")
+	wantBelief(t, filepath.Join(single, results.Given, "first"))
+	status(exitBad, "--belief-at is", "replay", drive, "--map", town, "--out", single, "--belief-at", "noon")
+	status(exitBad, "--belief-at needs --out", "replay", drive, "--map", town, "--belief-at", "5")
 	page, moved := filepath.Join(dir, "report.html"), filepath.Join(dir, "moved.roads.arrow")
 	status(exitDone, "2 runs", "report", out, "-o", page, "--pictures", filepath.Join(dir, "pictures"))
 	text, err := os.ReadFile(page)
@@ -60,4 +70,47 @@ func TestSweepAndCompare(t *testing.T) {
 	status(exitBad, "vehicle.nonsense", "replay", drive, "--map", town, "--set", "vehicle.nonsense=1")
 	status(exitBad, "is no KEY=VALUE", "replay", drive, "--map", town, "--set", "vehicle")
 	status(exitBad, "give three", "replay", drive, "--map", town, "--truth-offset", "1,2")
+}
+
+// wantBelief: the one belief in a run's folder holds all probability, with the mean
+// of the posterior of its time.
+func wantBelief(t *testing.T, run string) {
+	t.Helper()
+	files, err := filepath.Glob(filepath.Join(run, "belief-*"))
+	if err != nil || len(files) != 1 || filepath.Base(files[0]) != "belief-20300501T120015Z.geojson" {
+		t.Fatalf("%v, %v", files, err)
+	}
+	var b struct {
+		Features []struct {
+			Properties struct{ Probability float64 }
+			Geometry   struct{ Coordinates [2][2]float64 }
+		}
+	}
+	if err := results.ReadJSON(files[0], &b); err != nil {
+		t.Fatal(err)
+	}
+	var mass, lon, lat float64
+	for _, f := range b.Features {
+		p, c := f.Properties.Probability, f.Geometry.Coordinates
+		mass, lon, lat = mass+p, lon+p*(c[0][0]+c[1][0])/2, lat+p*(c[0][1]+c[1][1])/2
+	}
+	f, err := os.Open(filepath.Join(run, results.TableFile))
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer f.Close()
+	for row, err := range track.Rows(f, "track.csv") {
+		if err != nil {
+			t.Fatal(err)
+		}
+		if time.Unix(0, row.TimeNS).UTC().Format(time.TimeOnly) != "12:00:15" {
+			continue
+		}
+		d, _, err := geo.WGS84.Distance(row.At, geo.FromDegrees(lon/mass, lat/mass))
+		if err != nil || math.Abs(mass-1) > 1e-6 || d > 1 {
+			t.Errorf("%d cells hold %v, their mean %v m from the posterior's, %v", len(b.Features), mass, d, err)
+		}
+		return
+	}
+	t.Error("there is no posterior of that time")
 }

@@ -77,6 +77,9 @@ type Options struct {
 	// BeforeFix, if set, is given each satellite fix with the posterior just
 	// before it; see Stream.
 	BeforeFix func(ev sensor.Event, before *summary.Posterior)
+	// Moments and Belief are as in StreamOptions.
+	Moments []Moment
+	Belief  func(at sensor.Time, s *session.Session) error
 	// Stop, if set, is asked now and then; an error of it ends the run, and Run
 	// returns what came before beside it.
 	Stop func() error
@@ -98,6 +101,7 @@ func Run(d *drivefile.Drive, c session.Config, o Options) (*Result, error) {
 	if err != nil {
 		return nil, err
 	}
+	r.moments = moments{due: o.Moments, give: o.Belief}
 	r.s.Finals(func(p *summary.Posterior) { r.Posteriors = append(r.Posteriors, p) })
 	events := Ordered(d.Events)
 	var stopped error
@@ -113,6 +117,9 @@ func Run(d *drivefile.Drive, c session.Config, o Options) (*Result, error) {
 		if o.Progress != nil && (i+1)%32 == 0 {
 			o.Progress(i+1, len(events))
 		}
+	}
+	if err := r.moments.pass(r.latest+1, false, r.s); err != nil {
+		return nil, err
 	}
 	res := r.end()
 	if o.Progress != nil && stopped == nil {

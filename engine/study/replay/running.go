@@ -21,6 +21,7 @@ type running struct {
 	tookMs      []float64
 	n           int
 	fixes       *fixes // nil: nobody asks
+	moments     moments
 }
 
 // start makes the session of a drive.
@@ -63,6 +64,14 @@ func (r *running) add(ev sensor.Event) error {
 	}
 	if r.fixes != nil {
 		r.fixes.expect(ev)
+	}
+	if len(r.moments.due) > 0 {
+		if r.n == 1 {
+			r.moments.begin(r.Start)
+		}
+		if err := r.moments.pass(ev.Time, r.n == 1, r.s); err != nil {
+			return err
+		}
 	}
 	_, err := r.s.Add(ev)
 	now := time.Now()

@@ -34,6 +34,11 @@ type StreamOptions struct {
 	// fix were held out. A fix may come again, when a late measurement changes what
 	// was before it; the last one counts. The posterior is valid during the call.
 	BeforeFix func(ev sensor.Event, before *summary.Posterior)
+	// Moments are times at which Belief is called, with the session as it then is:
+	// all measurements until then and none after it. Times before the first
+	// measurement and after the last are passed over. An error of it ends the run.
+	Moments []Moment
+	Belief  func(at sensor.Time, s *session.Session) error
 	// Progress, if set, is called now and then with how many bytes and
 	// measurements were read since it was called last.
 	Progress func(bytes int64, measurements int)
@@ -56,6 +61,7 @@ func Stream(ctx context.Context, rd io.Reader, name string, c session.Config, o 
 	if err != nil {
 		return nil, err
 	}
+	r.moments = moments{due: o.Moments, give: o.Belief}
 	finals := 0
 	r.s.Finals(func(p *summary.Posterior) { finals++; o.Final(p) })
 	var waiting queue
@@ -115,6 +121,9 @@ func Stream(ctx context.Context, rd io.Reader, name string, c session.Config, o 
 			return nil, stopped
 		}
 		return nil, ErrNoMeasurements
+	}
+	if err := r.moments.pass(r.latest+1, false, r.s); err != nil {
+		return nil, err
 	}
 	res := r.end()
 	res.Timing.Posteriors = finals

@@ -180,7 +180,7 @@ func (w *work) describe(driveSHA256 string) (results.Run, error) {
 		place(b.ID, b.Position())
 	}
 	key, err := json.Marshal([]any{
-		r.DriveSHA256, r.MapFingerprint, string(yaml), r.MaxCells, r.TruthOffset, j.EstimateTruth, j.HoldOutFixes,
+		r.DriveSHA256, r.MapFingerprint, string(yaml), r.MaxCells, r.TruthOffset, j.EstimateTruth, j.HoldOutFixes, j.Beliefs,
 		r.Version, r.Program, r.Architecture,
 	})
 	if err != nil {
@@ -231,7 +231,7 @@ func (w *work) replay(ctx context.Context) (*replay.Result, error) {
 		return nil, err
 	}
 	defer f.Close()
-	o := replay.StreamOptions{Final: w.sinks.final, Watch: w.sinks.innovations.Add, Progress: w.progress}
+	o := replay.StreamOptions{Final: w.sinks.final, Watch: w.sinks.innovations.Add, Progress: w.progress, Moments: w.moments(), Belief: w.belief}
 	if w.job.HoldOutFixes {
 		o.BeforeFix = w.sinks.fixes.Add
 	}
@@ -263,7 +263,7 @@ func (w *work) whole(ctx context.Context) (*replay.Result, error) {
 			w.sinks.told = done
 		},
 	}
-	o.Stop = ctx.Err
+	o.Stop, o.Moments, o.Belief = ctx.Err, w.moments(), w.belief
 	if w.job.HoldOutFixes {
 		o.BeforeFix = w.sinks.fixes.Add
 	}

@@ -16,6 +16,7 @@ import (
 	"leadline/engine/geo"
 	"leadline/engine/sensor"
 	"leadline/engine/session"
+	"leadline/engine/study/replay"
 	"leadline/engine/study/score"
 	"leadline/engine/study/track"
 )
@@ -63,6 +64,8 @@ type Job struct {
 
 	// GPX and Parquet have tracks written in these forms, too.
 	GPX, Parquet bool
+	// Beliefs are times at which the whole belief is written.
+	Beliefs []replay.Moment
 
 	Version, Program string
 	Command          []string
