@@ -46,7 +46,7 @@ func printMistakes(b *strings.Builder, r *diagnose.Report) {
 	fmt.Fprintf(b, "  %-12s the first %.0f s, %d measurements, again with each usual mistake undone (%d, in %.1f s)\n",
 		"mistakes", r.OpeningS, r.Measurements, r.Tried, r.TookS)
 	if r.CutShort {
-		fmt.Fprintf(b, "  %-12s more of the drive would take too long beside its replay; `--diagnose always` takes up to a minute of one core\n", "")
+		fmt.Fprintf(b, "  %-12s all but the best few were tried on less of it, for want of time; `--diagnose always` takes up to a minute of one core for them\n", "")
 	}
 	if r.BaseGivenUpAfter != nil {
 		fmt.Fprintf(b, "  %-12s the log as it stands was given up after %.0f s, far behind: gains are at least what they say\n", "", *r.BaseGivenUpAfter)

@@ -56,7 +56,7 @@ func (c *course) cut(all, goOn []*entrant, round int) {
 		sum += e.work()
 	}
 	if sum > c.budget.most {
-		c.rounds, c.isCut = c.rounds[:round+1], true
+		c.rounds, c.whole, c.isCut = c.rounds[:round+1], c.rounds, true
 	}
 }
 

@@ -33,8 +33,8 @@ type Options struct {
 	Each func(n int, f func(i int))
 	// Beside is the record of the drive's replay where the diagnosis is made
 	// unasked: it then takes at most sixty times as long (budget.go), and no
-	// more than a minute of one core in any case. It tries less of the drive
-	// if it must.
+	// more than a minute of one core in any case, and as long again for the
+	// finalists (finals.go). It tries less of the drive with the others if it must.
 	Beside *Record
 	// Progress, if set, is called now and then, one call at a time, and at the
 	// end with done = total; the steps do not take equally long.
@@ -52,7 +52,8 @@ type Grid struct {
 type Report struct {
 	OpeningS     float64 `json:"opening_s"`
 	Measurements int     `json:"measurements"`
-	// CutShort: more of the drive would have taken too long.
+	// CutShort: with all mistakes more of the drive would have taken too long; the
+	// best few were tried on all of the opening.
 	CutShort bool `json:"cut_short"`
 	// Tried is how many mistakes were tried, each value that was looked for
 	// counted; NeededNats the gain from which one is named (see verdict.go).

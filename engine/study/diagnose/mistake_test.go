@@ -9,6 +9,7 @@ import (
 
 	"leadline/engine/geo"
 	"leadline/engine/sensor"
+	"leadline/fixtures/accept"
 )
 
 // TestUndoes plants mistakes by hand and undoes them: what was there comes
@@ -292,23 +293,39 @@ func TestBudget(t *testing.T) {
 	}
 }
 
-// TestCutShort: with little to spend, less of the drive is tried, which is the
-// same whatever runs at once, and what is said counts what was tried.
+// TestCutShort: with little to spend, less of the drive is tried with all but the
+// finalists, which the opening's end decides between: what is wrong is named, and
+// nothing where nothing is.
 func TestCutShort(t *testing.T) {
-	s := flyer(t, 1)
-	c, err := newCourse(s.drive, s.config, Options{MaxCells: 300})
-	must(t, c, err)
-	c.budget.most = 3e5
-	r := &Report{}
-	if err := c.tryAll(r, Options{}); err != nil {
-		t.Fatal(err)
-	}
-	if whole := c.events[len(c.events)-1].Time; !c.isCut || c.rounds[len(c.rounds)-1] >= whole {
-		t.Errorf("not cut: %v of %v", c.rounds, whole)
-	}
-	for _, k := range r.Candidates {
-		if k.Named {
-			t.Errorf("%s is named", k.Text())
+	for _, c := range []struct {
+		name  string
+		scene *scene
+		most  float64
+		want  string
+	}{
+		{"a flight", flyer(t, 1), 3e5, ""},
+		{"a car whose gyro is reversed", spoiled(plainCar(t, 1), each(func(m *sensor.Turn) { m.AngleRad *= -1 })), 1.6e6, "turn sign reversed"},
+	} {
+		k, err := newCourse(c.scene.drive, c.scene.config, Options{MaxCells: 1000, Each: accept.Each})
+		must(t, k, err)
+		k.budget.most = c.most
+		r := &Report{}
+		if err := k.tryAll(r, Options{}); err != nil {
+			t.Fatal(err)
+		}
+		short, whole := 0, 0
+		for _, m := range r.Candidates {
+			if m.Named != (m.Mistake == c.want) {
+				t.Errorf("%s: %s, gain %.1f: named %v", c.name, m.Text(), m.GainNats, m.Named)
+			}
+			if m.GivenUpAfter == nil {
+				whole++
+			} else {
+				short++
+			}
+		}
+		if !k.isCut || whole > finalists || short < 10 {
+			t.Errorf("%s: cut %v, %d finalists, %d others", c.name, k.isCut, whole, short)
 		}
 	}
 }

@@ -20,6 +20,9 @@ type plant struct {
 	want          string
 	value, within float64 // of what has a value
 	grid          *Grid   // a grid that is known
+	// absorbed names what is estimated that takes the mistake upon itself: where
+	// it is not named, that ends beyond its prior.
+	absorbed string
 	// shortS is the opening that the short form tries again; 0: it does not.
 	shortS float64
 }
@@ -118,7 +121,7 @@ var plants = []plant{
 	{name: "car: miles for kilometres", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM /= 1.609344 }), want: "distances in miles or mph, taken as kilometres or km/h", shortS: 80},
 	{name: "car: kilometres for miles", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 1.609344 }), want: "distances in kilometres or km/h, taken as miles or mph"},
 	{name: "car: km/h for m/s", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 3.6 }), want: "distances in km/h, taken as m/s"},
-	{name: "car: yards", scene: fittedCar, spoil: each(func(m *sensor.Travel) { m.DistanceM /= 0.9144 }), want: "distances in yards, taken as metres"},
+	{name: "car: yards", scene: fittedCar, spoil: each(func(m *sensor.Travel) { m.DistanceM /= 0.9144 }), want: "distances in yards, taken as metres", absorbed: "odometer_scale"},
 	{name: "car: travel reversed", scene: fittedCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= -1 }), want: "forward and backward reversed", shortS: 60},
 	{name: "car: fixes 1 s late", scene: fittedCar, spoil: late("fix", 1), want: "times late", value: 1, shortS: 60},
 	{name: "car: compass 1 s early", scene: fittedCar, spoil: late("compass", -1), want: "times early", value: -1, shortS: 60},

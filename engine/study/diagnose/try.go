@@ -58,7 +58,12 @@ func (c *course) tryAll(r *Report, o Options) error {
 	c.compare(r, base, tried)
 	progress(steps - fine)
 	if more := c.factors(r, base); len(more) > 0 {
-		c.compare(r, base, append(tried, more...))
+		tried = append(tried, more...)
+		c.compare(r, base, tried)
+	}
+	if c.isCut {
+		base, tried = c.finals(r, base, tried)
+		c.compare(r, base, tried)
 	}
 	progress(steps)
 	return nil
