@@ -80,6 +80,8 @@ var mayImport = map[string][]string{
 		"engine/study/score", "network", "network/roadfile", "terrain", "terrain/heightfile", "fixtures/accept", "fixtures/drives", "fixtures/outside", "fixtures/reference", "fixtures/roads", "fixtures/sim",
 	},
 	"fixtures/credibility/run": {"fixtures/credibility"},
+	"fixtures/bench":           {"engine/filter", "engine/geo", "engine/plane", "engine/sensor", "terrain"},
+	"fixtures/bench/run":       {"fixtures/bench"},
 	"fixtures/survive": {
 		api, "engine/client", "engine/filter", "engine/journal", "engine/sensor", "engine/server", "engine/wire", "network/roadfile",
 		"fixtures/drives", "fixtures/roads", "fixtures/sim",

@@ -33,6 +33,8 @@ type Workspace struct {
 	keep          []bool    // and keepNear
 	cells         []uint16  // those of a tile that have mass
 	cellLogs      []float64
+	residual      []float64 // and what densities works with
+	variance      []float64
 	tiles         tileSpace
 
 	foretell    *Predictive

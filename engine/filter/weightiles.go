@@ -63,8 +63,16 @@ func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 		w.terms.Reset(n, m, 2)
 		lin.Linearize(&w.terms, &w.at, nil, nil)
 		blunt := w.blunt[i*tileCells : (i+1)*tileCells]
+		if nw.simple() {
+			w.densities(&nw, n, least)
+		} else {
+			w.cellLogs = resize(w.cellLogs, n)
+			for j := range n {
+				w.cellLogs[j] = nw.density(&w.terms, j, least)
+			}
+		}
 		for j, x := range w.cells {
-			logs[x] = nw.density(&w.terms, j, least)
+			logs[x] = w.cellLogs[j]
 			blunt[x] = nw.blunt(&w.terms, j, least)
 			if p != nil {
 				w.predictions.add(tile[x], &w.terms, j, m, w.terms.ofPosition(j, m, least), &w.at, turned)
@@ -184,6 +192,38 @@ func (w *noiseWork) density(t *Terms, i int, least float64) float64 {
 		sum += kernel.Exp(logs[c] - most)
 	}
 	return float64(w.power * (most + kernel.Log(sum)))
+}
+
+// simple says whether the noise is one Gaussian of one component, with outliers or
+// without, that counts in full.
+func (w *noiseWork) simple() bool { return w.m == 1 && len(w.parts) == 1 && w.power == 1 }
+
+// densities writes noiseWork.density of n points into w.cellLogs, for a simple
+// noise.
+func (w *Workspace) densities(nw *noiseWork, n int, least float64) {
+	t, noise, mean := &w.terms, nw.parts[0].Cov[0], nw.parts[0].Mean
+	w.cellLogs, w.residual, w.variance = resize(w.cellLogs, n), resize(w.residual, n), resize(w.variance, n)
+	for j := range n {
+		if flat := t.Flat[j]; flat == flat {
+			w.residual[j], w.variance[j] = 0, 1
+			continue
+		}
+		e, n := t.Row[2*j], t.Row[2*j+1]
+		v := noise + t.Extra[j]
+		if wide := float64(least * (float64(e*e) + float64(n*n))); wide > v {
+			v = (wide - v) + v
+		}
+		w.residual[j], w.variance[j] = t.Residual[j]-mean, v
+	}
+	kernel.LogNormal(w.cellLogs, w.residual, w.variance, nw.logW[0])
+	if !math.IsInf(nw.logFlat, -1) {
+		kernel.LogAdd(w.cellLogs, nw.logFlat)
+	}
+	for j, flat := range t.Flat {
+		if flat == flat {
+			w.cellLogs[j] = flat
+		}
+	}
 }
 
 // short returns the least variance that makes the noise of part c as wide as a

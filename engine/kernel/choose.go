@@ -6,6 +6,12 @@ func spread(dst, src []float64, at, stride int, weight []float64) {
 	spreadPlain(dst, src, at, stride, weight, 0)
 }
 
+func logNormal(dst, residual, variance []float64, logWeight float64) {
+	logNormalPlain(dst, residual, variance, logWeight, 0)
+}
+
+func logAdd(dst []float64, log float64) { logAddPlain(dst, log, 0) }
+
 func weigh(dst, mass, logs []float64, most, least float64) {
 	weighPlain(dst, mass, logs, most, least, 0)
 }

@@ -18,6 +18,26 @@ func spread(dst, src []float64, at, stride int, weight []float64) {
 	spreadPlain(dst, src, at, stride, weight, n)
 }
 
+func logNormal(dst, residual, variance []float64, logWeight float64) {
+	n := 0
+	if vectors {
+		if n = len(dst) &^ 3; n > 0 {
+			logNormalAVX2(&dst[0], &residual[0], &variance[0], n, logWeight)
+		}
+	}
+	logNormalPlain(dst, residual, variance, logWeight, n)
+}
+
+func logAdd(dst []float64, log float64) {
+	n := 0
+	if vectors {
+		if n = len(dst) &^ 3; n > 0 {
+			logAddAVX2(&dst[0], n, log)
+		}
+	}
+	logAddPlain(dst, log, n)
+}
+
 func weigh(dst, mass, logs []float64, most, least float64) {
 	n := 0
 	if vectors {

@@ -13,3 +13,13 @@ func spreadAVX2(dst *float64, src *float64, weight *float64, n int, stride int, 
 //
 //go:noescape
 func weighAVX2(dst *float64, mass *float64, logs *float64, n int, most float64, least float64)
+
+// logNormalAVX2 is logNormalPlain for n values, a multiple of 4, whose variances are normal numbers.
+//
+//go:noescape
+func logNormalAVX2(dst *float64, residual *float64, variance *float64, n int, logWeight float64)
+
+// logAddAVX2 is logAddPlain for n values, a multiple of 4.
+//
+//go:noescape
+func logAddAVX2(dst *float64, n int, log float64)

@@ -99,6 +99,36 @@ fourDone:
 	VZEROUPPER
 	RET
 
+DATA half<>+0(SB)/8, $0x3fe0000000000000
+DATA half<>+8(SB)/8, $0x3fe0000000000000
+DATA half<>+16(SB)/8, $0x3fe0000000000000
+DATA half<>+24(SB)/8, $0x3fe0000000000000
+GLOBL half<>(SB), RODATA|NOPTR, $32
+
+DATA one<>+0(SB)/8, $0x3ff0000000000000
+DATA one<>+8(SB)/8, $0x3ff0000000000000
+DATA one<>+16(SB)/8, $0x3ff0000000000000
+DATA one<>+24(SB)/8, $0x3ff0000000000000
+GLOBL one<>(SB), RODATA|NOPTR, $32
+
+DATA two<>+0(SB)/8, $0x4000000000000000
+DATA two<>+8(SB)/8, $0x4000000000000000
+DATA two<>+16(SB)/8, $0x4000000000000000
+DATA two<>+24(SB)/8, $0x4000000000000000
+GLOBL two<>(SB), RODATA|NOPTR, $32
+
+DATA ln2High<>+0(SB)/8, $0x3fe62e42fee00000
+DATA ln2High<>+8(SB)/8, $0x3fe62e42fee00000
+DATA ln2High<>+16(SB)/8, $0x3fe62e42fee00000
+DATA ln2High<>+24(SB)/8, $0x3fe62e42fee00000
+GLOBL ln2High<>(SB), RODATA|NOPTR, $32
+
+DATA ln2Low<>+0(SB)/8, $0x3dea39ef35793c76
+DATA ln2Low<>+8(SB)/8, $0x3dea39ef35793c76
+DATA ln2Low<>+16(SB)/8, $0x3dea39ef35793c76
+DATA ln2Low<>+24(SB)/8, $0x3dea39ef35793c76
+GLOBL ln2Low<>(SB), RODATA|NOPTR, $32
+
 DATA expLeast<>+0(SB)/8, $0xc08749999999999a
 DATA expLeast<>+8(SB)/8, $0xc08749999999999a
 DATA expLeast<>+16(SB)/8, $0xc08749999999999a
@@ -111,35 +141,11 @@ DATA expClamp<>+16(SB)/8, $0xc087500000000000
 DATA expClamp<>+24(SB)/8, $0xc087500000000000
 GLOBL expClamp<>(SB), RODATA|NOPTR, $32
 
-DATA expPerLn2<>+0(SB)/8, $0x3ff71547652b82fe
-DATA expPerLn2<>+8(SB)/8, $0x3ff71547652b82fe
-DATA expPerLn2<>+16(SB)/8, $0x3ff71547652b82fe
-DATA expPerLn2<>+24(SB)/8, $0x3ff71547652b82fe
-GLOBL expPerLn2<>(SB), RODATA|NOPTR, $32
-
-DATA expHalf<>+0(SB)/8, $0x3fe0000000000000
-DATA expHalf<>+8(SB)/8, $0x3fe0000000000000
-DATA expHalf<>+16(SB)/8, $0x3fe0000000000000
-DATA expHalf<>+24(SB)/8, $0x3fe0000000000000
-GLOBL expHalf<>(SB), RODATA|NOPTR, $32
-
-DATA expOne<>+0(SB)/8, $0x3ff0000000000000
-DATA expOne<>+8(SB)/8, $0x3ff0000000000000
-DATA expOne<>+16(SB)/8, $0x3ff0000000000000
-DATA expOne<>+24(SB)/8, $0x3ff0000000000000
-GLOBL expOne<>(SB), RODATA|NOPTR, $32
-
-DATA expLn2Hi<>+0(SB)/8, $0x3fe62e42fee00000
-DATA expLn2Hi<>+8(SB)/8, $0x3fe62e42fee00000
-DATA expLn2Hi<>+16(SB)/8, $0x3fe62e42fee00000
-DATA expLn2Hi<>+24(SB)/8, $0x3fe62e42fee00000
-GLOBL expLn2Hi<>(SB), RODATA|NOPTR, $32
-
-DATA expLn2Lo<>+0(SB)/8, $0x3dea39ef35793c76
-DATA expLn2Lo<>+8(SB)/8, $0x3dea39ef35793c76
-DATA expLn2Lo<>+16(SB)/8, $0x3dea39ef35793c76
-DATA expLn2Lo<>+24(SB)/8, $0x3dea39ef35793c76
-GLOBL expLn2Lo<>(SB), RODATA|NOPTR, $32
+DATA perLn2<>+0(SB)/8, $0x3ff71547652b82fe
+DATA perLn2<>+8(SB)/8, $0x3ff71547652b82fe
+DATA perLn2<>+16(SB)/8, $0x3ff71547652b82fe
+DATA perLn2<>+24(SB)/8, $0x3ff71547652b82fe
+GLOBL perLn2<>(SB), RODATA|NOPTR, $32
 
 DATA expLowest<>+0(SB)/8, $0xc08fe80000000000
 DATA expLowest<>+8(SB)/8, $0xc08fe80000000000
@@ -147,83 +153,197 @@ DATA expLowest<>+16(SB)/8, $0xc08fe80000000000
 DATA expLowest<>+24(SB)/8, $0xc08fe80000000000
 GLOBL expLowest<>(SB), RODATA|NOPTR, $32
 
-DATA expC2<>+0(SB)/8, $0x3fe0000000000000
-DATA expC2<>+8(SB)/8, $0x3fe0000000000000
-DATA expC2<>+16(SB)/8, $0x3fe0000000000000
-DATA expC2<>+24(SB)/8, $0x3fe0000000000000
-GLOBL expC2<>(SB), RODATA|NOPTR, $32
-
-DATA expC3<>+0(SB)/8, $0x3fc5555555555555
-DATA expC3<>+8(SB)/8, $0x3fc5555555555555
-DATA expC3<>+16(SB)/8, $0x3fc5555555555555
-DATA expC3<>+24(SB)/8, $0x3fc5555555555555
-GLOBL expC3<>(SB), RODATA|NOPTR, $32
-
-DATA expC4<>+0(SB)/8, $0x3fa5555555555555
-DATA expC4<>+8(SB)/8, $0x3fa5555555555555
-DATA expC4<>+16(SB)/8, $0x3fa5555555555555
-DATA expC4<>+24(SB)/8, $0x3fa5555555555555
-GLOBL expC4<>(SB), RODATA|NOPTR, $32
-
-DATA expC5<>+0(SB)/8, $0x3f81111111111111
-DATA expC5<>+8(SB)/8, $0x3f81111111111111
-DATA expC5<>+16(SB)/8, $0x3f81111111111111
-DATA expC5<>+24(SB)/8, $0x3f81111111111111
-GLOBL expC5<>(SB), RODATA|NOPTR, $32
-
-DATA expC6<>+0(SB)/8, $0x3f56c16c16c16c17
-DATA expC6<>+8(SB)/8, $0x3f56c16c16c16c17
-DATA expC6<>+16(SB)/8, $0x3f56c16c16c16c17
-DATA expC6<>+24(SB)/8, $0x3f56c16c16c16c17
-GLOBL expC6<>(SB), RODATA|NOPTR, $32
-
-DATA expC7<>+0(SB)/8, $0x3f2a01a01a01a01a
-DATA expC7<>+8(SB)/8, $0x3f2a01a01a01a01a
-DATA expC7<>+16(SB)/8, $0x3f2a01a01a01a01a
-DATA expC7<>+24(SB)/8, $0x3f2a01a01a01a01a
-GLOBL expC7<>(SB), RODATA|NOPTR, $32
-
-DATA expC8<>+0(SB)/8, $0x3efa01a01a01a01a
-DATA expC8<>+8(SB)/8, $0x3efa01a01a01a01a
-DATA expC8<>+16(SB)/8, $0x3efa01a01a01a01a
-DATA expC8<>+24(SB)/8, $0x3efa01a01a01a01a
-GLOBL expC8<>(SB), RODATA|NOPTR, $32
-
-DATA expC9<>+0(SB)/8, $0x3ec71de3a556c734
-DATA expC9<>+8(SB)/8, $0x3ec71de3a556c734
-DATA expC9<>+16(SB)/8, $0x3ec71de3a556c734
-DATA expC9<>+24(SB)/8, $0x3ec71de3a556c734
-GLOBL expC9<>(SB), RODATA|NOPTR, $32
-
-DATA expC10<>+0(SB)/8, $0x3e927e4fb7789f5c
-DATA expC10<>+8(SB)/8, $0x3e927e4fb7789f5c
-DATA expC10<>+16(SB)/8, $0x3e927e4fb7789f5c
-DATA expC10<>+24(SB)/8, $0x3e927e4fb7789f5c
-GLOBL expC10<>(SB), RODATA|NOPTR, $32
-
-DATA expC11<>+0(SB)/8, $0x3e5ae64567f544e4
-DATA expC11<>+8(SB)/8, $0x3e5ae64567f544e4
-DATA expC11<>+16(SB)/8, $0x3e5ae64567f544e4
-DATA expC11<>+24(SB)/8, $0x3e5ae64567f544e4
-GLOBL expC11<>(SB), RODATA|NOPTR, $32
-
-DATA expC12<>+0(SB)/8, $0x3e21eed8eff8d898
-DATA expC12<>+8(SB)/8, $0x3e21eed8eff8d898
-DATA expC12<>+16(SB)/8, $0x3e21eed8eff8d898
-DATA expC12<>+24(SB)/8, $0x3e21eed8eff8d898
-GLOBL expC12<>(SB), RODATA|NOPTR, $32
-
-DATA expC13<>+0(SB)/8, $0x3de6124613a86d09
-DATA expC13<>+8(SB)/8, $0x3de6124613a86d09
-DATA expC13<>+16(SB)/8, $0x3de6124613a86d09
-DATA expC13<>+24(SB)/8, $0x3de6124613a86d09
-GLOBL expC13<>(SB), RODATA|NOPTR, $32
-
 DATA expBias<>+0(SB)/8, $0x00000000000003ff
 DATA expBias<>+8(SB)/8, $0x00000000000003ff
 DATA expBias<>+16(SB)/8, $0x00000000000003ff
 DATA expBias<>+24(SB)/8, $0x00000000000003ff
 GLOBL expBias<>(SB), RODATA|NOPTR, $32
+
+DATA fraction<>+0(SB)/8, $0x000fffffffffffff
+DATA fraction<>+8(SB)/8, $0x000fffffffffffff
+DATA fraction<>+16(SB)/8, $0x000fffffffffffff
+DATA fraction<>+24(SB)/8, $0x000fffffffffffff
+GLOBL fraction<>(SB), RODATA|NOPTR, $32
+
+DATA halfExponent<>+0(SB)/8, $0x3fe0000000000000
+DATA halfExponent<>+8(SB)/8, $0x3fe0000000000000
+DATA halfExponent<>+16(SB)/8, $0x3fe0000000000000
+DATA halfExponent<>+24(SB)/8, $0x3fe0000000000000
+GLOBL halfExponent<>(SB), RODATA|NOPTR, $32
+
+DATA float52<>+0(SB)/8, $0x4330000000000000
+DATA float52<>+8(SB)/8, $0x4330000000000000
+DATA float52<>+16(SB)/8, $0x4330000000000000
+DATA float52<>+24(SB)/8, $0x4330000000000000
+GLOBL float52<>(SB), RODATA|NOPTR, $32
+
+DATA halfBits<>+0(SB)/8, $0x43300000000003fe
+DATA halfBits<>+8(SB)/8, $0x43300000000003fe
+DATA halfBits<>+16(SB)/8, $0x43300000000003fe
+DATA halfBits<>+24(SB)/8, $0x43300000000003fe
+GLOBL halfBits<>(SB), RODATA|NOPTR, $32
+
+DATA rootHalf<>+0(SB)/8, $0x3fe6a09e667f3bcd
+DATA rootHalf<>+8(SB)/8, $0x3fe6a09e667f3bcd
+DATA rootHalf<>+16(SB)/8, $0x3fe6a09e667f3bcd
+DATA rootHalf<>+24(SB)/8, $0x3fe6a09e667f3bcd
+GLOBL rootHalf<>(SB), RODATA|NOPTR, $32
+
+DATA minusHalf<>+0(SB)/8, $0xbfe0000000000000
+DATA minusHalf<>+8(SB)/8, $0xbfe0000000000000
+DATA minusHalf<>+16(SB)/8, $0xbfe0000000000000
+DATA minusHalf<>+24(SB)/8, $0xbfe0000000000000
+GLOBL minusHalf<>(SB), RODATA|NOPTR, $32
+
+DATA logSqrt2Pi<>+0(SB)/8, $0x3fed67f1c864beb5
+DATA logSqrt2Pi<>+8(SB)/8, $0x3fed67f1c864beb5
+DATA logSqrt2Pi<>+16(SB)/8, $0x3fed67f1c864beb5
+DATA logSqrt2Pi<>+24(SB)/8, $0x3fed67f1c864beb5
+GLOBL logSqrt2Pi<>(SB), RODATA|NOPTR, $32
+
+DATA signBit<>+0(SB)/8, $0x8000000000000000
+DATA signBit<>+8(SB)/8, $0x8000000000000000
+DATA signBit<>+16(SB)/8, $0x8000000000000000
+DATA signBit<>+24(SB)/8, $0x8000000000000000
+GLOBL signBit<>(SB), RODATA|NOPTR, $32
+
+DATA exp2<>+0(SB)/8, $0x3fe0000000000000
+DATA exp2<>+8(SB)/8, $0x3fe0000000000000
+DATA exp2<>+16(SB)/8, $0x3fe0000000000000
+DATA exp2<>+24(SB)/8, $0x3fe0000000000000
+GLOBL exp2<>(SB), RODATA|NOPTR, $32
+
+DATA exp3<>+0(SB)/8, $0x3fc5555555555555
+DATA exp3<>+8(SB)/8, $0x3fc5555555555555
+DATA exp3<>+16(SB)/8, $0x3fc5555555555555
+DATA exp3<>+24(SB)/8, $0x3fc5555555555555
+GLOBL exp3<>(SB), RODATA|NOPTR, $32
+
+DATA exp4<>+0(SB)/8, $0x3fa5555555555555
+DATA exp4<>+8(SB)/8, $0x3fa5555555555555
+DATA exp4<>+16(SB)/8, $0x3fa5555555555555
+DATA exp4<>+24(SB)/8, $0x3fa5555555555555
+GLOBL exp4<>(SB), RODATA|NOPTR, $32
+
+DATA exp5<>+0(SB)/8, $0x3f81111111111111
+DATA exp5<>+8(SB)/8, $0x3f81111111111111
+DATA exp5<>+16(SB)/8, $0x3f81111111111111
+DATA exp5<>+24(SB)/8, $0x3f81111111111111
+GLOBL exp5<>(SB), RODATA|NOPTR, $32
+
+DATA exp6<>+0(SB)/8, $0x3f56c16c16c16c17
+DATA exp6<>+8(SB)/8, $0x3f56c16c16c16c17
+DATA exp6<>+16(SB)/8, $0x3f56c16c16c16c17
+DATA exp6<>+24(SB)/8, $0x3f56c16c16c16c17
+GLOBL exp6<>(SB), RODATA|NOPTR, $32
+
+DATA exp7<>+0(SB)/8, $0x3f2a01a01a01a01a
+DATA exp7<>+8(SB)/8, $0x3f2a01a01a01a01a
+DATA exp7<>+16(SB)/8, $0x3f2a01a01a01a01a
+DATA exp7<>+24(SB)/8, $0x3f2a01a01a01a01a
+GLOBL exp7<>(SB), RODATA|NOPTR, $32
+
+DATA exp8<>+0(SB)/8, $0x3efa01a01a01a01a
+DATA exp8<>+8(SB)/8, $0x3efa01a01a01a01a
+DATA exp8<>+16(SB)/8, $0x3efa01a01a01a01a
+DATA exp8<>+24(SB)/8, $0x3efa01a01a01a01a
+GLOBL exp8<>(SB), RODATA|NOPTR, $32
+
+DATA exp9<>+0(SB)/8, $0x3ec71de3a556c734
+DATA exp9<>+8(SB)/8, $0x3ec71de3a556c734
+DATA exp9<>+16(SB)/8, $0x3ec71de3a556c734
+DATA exp9<>+24(SB)/8, $0x3ec71de3a556c734
+GLOBL exp9<>(SB), RODATA|NOPTR, $32
+
+DATA exp10<>+0(SB)/8, $0x3e927e4fb7789f5c
+DATA exp10<>+8(SB)/8, $0x3e927e4fb7789f5c
+DATA exp10<>+16(SB)/8, $0x3e927e4fb7789f5c
+DATA exp10<>+24(SB)/8, $0x3e927e4fb7789f5c
+GLOBL exp10<>(SB), RODATA|NOPTR, $32
+
+DATA exp11<>+0(SB)/8, $0x3e5ae64567f544e4
+DATA exp11<>+8(SB)/8, $0x3e5ae64567f544e4
+DATA exp11<>+16(SB)/8, $0x3e5ae64567f544e4
+DATA exp11<>+24(SB)/8, $0x3e5ae64567f544e4
+GLOBL exp11<>(SB), RODATA|NOPTR, $32
+
+DATA exp12<>+0(SB)/8, $0x3e21eed8eff8d898
+DATA exp12<>+8(SB)/8, $0x3e21eed8eff8d898
+DATA exp12<>+16(SB)/8, $0x3e21eed8eff8d898
+DATA exp12<>+24(SB)/8, $0x3e21eed8eff8d898
+GLOBL exp12<>(SB), RODATA|NOPTR, $32
+
+DATA exp13<>+0(SB)/8, $0x3de6124613a86d09
+DATA exp13<>+8(SB)/8, $0x3de6124613a86d09
+DATA exp13<>+16(SB)/8, $0x3de6124613a86d09
+DATA exp13<>+24(SB)/8, $0x3de6124613a86d09
+GLOBL exp13<>(SB), RODATA|NOPTR, $32
+
+DATA log3<>+0(SB)/8, $0x3fd5555555555555
+DATA log3<>+8(SB)/8, $0x3fd5555555555555
+DATA log3<>+16(SB)/8, $0x3fd5555555555555
+DATA log3<>+24(SB)/8, $0x3fd5555555555555
+GLOBL log3<>(SB), RODATA|NOPTR, $32
+
+DATA log5<>+0(SB)/8, $0x3fc999999999999a
+DATA log5<>+8(SB)/8, $0x3fc999999999999a
+DATA log5<>+16(SB)/8, $0x3fc999999999999a
+DATA log5<>+24(SB)/8, $0x3fc999999999999a
+GLOBL log5<>(SB), RODATA|NOPTR, $32
+
+DATA log7<>+0(SB)/8, $0x3fc2492492492492
+DATA log7<>+8(SB)/8, $0x3fc2492492492492
+DATA log7<>+16(SB)/8, $0x3fc2492492492492
+DATA log7<>+24(SB)/8, $0x3fc2492492492492
+GLOBL log7<>(SB), RODATA|NOPTR, $32
+
+DATA log9<>+0(SB)/8, $0x3fbc71c71c71c71c
+DATA log9<>+8(SB)/8, $0x3fbc71c71c71c71c
+DATA log9<>+16(SB)/8, $0x3fbc71c71c71c71c
+DATA log9<>+24(SB)/8, $0x3fbc71c71c71c71c
+GLOBL log9<>(SB), RODATA|NOPTR, $32
+
+DATA log11<>+0(SB)/8, $0x3fb745d1745d1746
+DATA log11<>+8(SB)/8, $0x3fb745d1745d1746
+DATA log11<>+16(SB)/8, $0x3fb745d1745d1746
+DATA log11<>+24(SB)/8, $0x3fb745d1745d1746
+GLOBL log11<>(SB), RODATA|NOPTR, $32
+
+DATA log13<>+0(SB)/8, $0x3fb3b13b13b13b14
+DATA log13<>+8(SB)/8, $0x3fb3b13b13b13b14
+DATA log13<>+16(SB)/8, $0x3fb3b13b13b13b14
+DATA log13<>+24(SB)/8, $0x3fb3b13b13b13b14
+GLOBL log13<>(SB), RODATA|NOPTR, $32
+
+DATA log15<>+0(SB)/8, $0x3fb1111111111111
+DATA log15<>+8(SB)/8, $0x3fb1111111111111
+DATA log15<>+16(SB)/8, $0x3fb1111111111111
+DATA log15<>+24(SB)/8, $0x3fb1111111111111
+GLOBL log15<>(SB), RODATA|NOPTR, $32
+
+DATA log17<>+0(SB)/8, $0x3fae1e1e1e1e1e1e
+DATA log17<>+8(SB)/8, $0x3fae1e1e1e1e1e1e
+DATA log17<>+16(SB)/8, $0x3fae1e1e1e1e1e1e
+DATA log17<>+24(SB)/8, $0x3fae1e1e1e1e1e1e
+GLOBL log17<>(SB), RODATA|NOPTR, $32
+
+DATA log19<>+0(SB)/8, $0x3faaf286bca1af28
+DATA log19<>+8(SB)/8, $0x3faaf286bca1af28
+DATA log19<>+16(SB)/8, $0x3faaf286bca1af28
+DATA log19<>+24(SB)/8, $0x3faaf286bca1af28
+GLOBL log19<>(SB), RODATA|NOPTR, $32
+
+DATA log21<>+0(SB)/8, $0x3fa8618618618618
+DATA log21<>+8(SB)/8, $0x3fa8618618618618
+DATA log21<>+16(SB)/8, $0x3fa8618618618618
+DATA log21<>+24(SB)/8, $0x3fa8618618618618
+GLOBL log21<>(SB), RODATA|NOPTR, $32
+
+DATA log23<>+0(SB)/8, $0x3fa642c8590b2164
+DATA log23<>+8(SB)/8, $0x3fa642c8590b2164
+DATA log23<>+16(SB)/8, $0x3fa642c8590b2164
+DATA log23<>+24(SB)/8, $0x3fa642c8590b2164
+GLOBL log23<>(SB), RODATA|NOPTR, $32
 
 // func weighAVX2(dst *float64, mass *float64, logs *float64, n int, most float64, least float64)
 // Requires: AVX, AVX2
@@ -242,42 +362,40 @@ next:
 	VMOVUPD    (DX), Y3
 	VSUBPD     Y0, Y3, Y3
 	VCMPPD     $0x0d, expLeast<>+0(SB), Y3, Y4
-	VCMPPD     $0x0d, Y1, Y2, Y6
-	VANDPD     Y6, Y4, Y4
 	VMAXPD     expClamp<>+0(SB), Y3, Y3
-	VMULPD     expPerLn2<>+0(SB), Y3, Y5
-	VADDPD     expHalf<>+0(SB), Y5, Y5
+	VMULPD     perLn2<>+0(SB), Y3, Y5
+	VADDPD     half<>+0(SB), Y5, Y5
 	VROUNDPD   $0x09, Y5, Y5
-	VMULPD     expLn2Hi<>+0(SB), Y5, Y6
+	VMULPD     ln2High<>+0(SB), Y5, Y6
 	VSUBPD     Y6, Y3, Y3
-	VMULPD     expLn2Lo<>+0(SB), Y5, Y6
+	VMULPD     ln2Low<>+0(SB), Y5, Y6
 	VSUBPD     Y6, Y3, Y3
-	VMULPD     expC13<>+0(SB), Y3, Y7
-	VADDPD     expC12<>+0(SB), Y7, Y7
+	VMULPD     exp13<>+0(SB), Y3, Y7
+	VADDPD     exp12<>+0(SB), Y7, Y7
 	VMULPD     Y3, Y7, Y7
-	VADDPD     expC11<>+0(SB), Y7, Y7
+	VADDPD     exp11<>+0(SB), Y7, Y7
 	VMULPD     Y3, Y7, Y7
-	VADDPD     expC10<>+0(SB), Y7, Y7
+	VADDPD     exp10<>+0(SB), Y7, Y7
 	VMULPD     Y3, Y7, Y7
-	VADDPD     expC9<>+0(SB), Y7, Y7
+	VADDPD     exp9<>+0(SB), Y7, Y7
 	VMULPD     Y3, Y7, Y7
-	VADDPD     expC8<>+0(SB), Y7, Y7
+	VADDPD     exp8<>+0(SB), Y7, Y7
 	VMULPD     Y3, Y7, Y7
-	VADDPD     expC7<>+0(SB), Y7, Y7
+	VADDPD     exp7<>+0(SB), Y7, Y7
 	VMULPD     Y3, Y7, Y7
-	VADDPD     expC6<>+0(SB), Y7, Y7
+	VADDPD     exp6<>+0(SB), Y7, Y7
 	VMULPD     Y3, Y7, Y7
-	VADDPD     expC5<>+0(SB), Y7, Y7
+	VADDPD     exp5<>+0(SB), Y7, Y7
 	VMULPD     Y3, Y7, Y7
-	VADDPD     expC4<>+0(SB), Y7, Y7
+	VADDPD     exp4<>+0(SB), Y7, Y7
 	VMULPD     Y3, Y7, Y7
-	VADDPD     expC3<>+0(SB), Y7, Y7
+	VADDPD     exp3<>+0(SB), Y7, Y7
 	VMULPD     Y3, Y7, Y7
-	VADDPD     expC2<>+0(SB), Y7, Y7
+	VADDPD     exp2<>+0(SB), Y7, Y7
 	VMULPD     Y3, Y7, Y7
 	VMULPD     Y3, Y7, Y7
 	VADDPD     Y3, Y7, Y7
-	VADDPD     expOne<>+0(SB), Y7, Y7
+	VADDPD     one<>+0(SB), Y7, Y7
 	VMAXPD     expLowest<>+0(SB), Y5, Y3
 	VSUBPD     Y3, Y5, Y5
 	VCVTPD2DQY Y3, X3
@@ -290,6 +408,8 @@ next:
 	VPADDQ     expBias<>+0(SB), Y6, Y6
 	VPSLLQ     $0x34, Y6, Y6
 	VMULPD     Y6, Y7, Y7
+	VCMPPD     $0x0d, Y1, Y2, Y3
+	VANDPD     Y3, Y4, Y4
 	VMULPD     Y7, Y2, Y2
 	VANDPD     Y4, Y2, Y2
 	VMOVUPD    Y2, (AX)
@@ -297,6 +417,198 @@ next:
 	ADDQ       $0x20, CX
 	ADDQ       $0x20, DX
 	SUBQ       $0x04, BX
+	JMP        next
+
+done:
+	VZEROUPPER
+	RET
+
+// func logNormalAVX2(dst *float64, residual *float64, variance *float64, n int, logWeight float64)
+// Requires: AVX, AVX2
+TEXT ·logNormalAVX2(SB), NOSPLIT, $0-40
+	MOVQ         dst+0(FP), AX
+	MOVQ         residual+8(FP), CX
+	MOVQ         variance+16(FP), DX
+	MOVQ         n+24(FP), BX
+	VBROADCASTSD logWeight+32(FP), Y0
+
+next:
+	TESTQ   BX, BX
+	JZ      done
+	VMOVUPD (CX), Y1
+	VMOVUPD (DX), Y2
+	VMULPD  Y1, Y1, Y1
+	VMOVUPD one<>+0(SB), Y3
+	VDIVPD  Y2, Y3, Y3
+	VMULPD  Y3, Y1, Y1
+	VPSRLQ  $0x34, Y2, Y3
+	VPOR    float52<>+0(SB), Y3, Y3
+	VSUBPD  halfBits<>+0(SB), Y3, Y3
+	VPAND   fraction<>+0(SB), Y2, Y2
+	VPOR    halfExponent<>+0(SB), Y2, Y2
+	VCMPPD  $0x01, rootHalf<>+0(SB), Y2, Y4
+	VANDPD  Y4, Y2, Y5
+	VADDPD  Y5, Y2, Y2
+	VANDPD  one<>+0(SB), Y4, Y5
+	VSUBPD  Y5, Y3, Y3
+	VSUBPD  one<>+0(SB), Y2, Y2
+	VADDPD  two<>+0(SB), Y2, Y5
+	VDIVPD  Y5, Y2, Y5
+	VMULPD  Y5, Y5, Y6
+	VMULPD  log23<>+0(SB), Y6, Y4
+	VADDPD  log21<>+0(SB), Y4, Y4
+	VMULPD  Y6, Y4, Y4
+	VADDPD  log19<>+0(SB), Y4, Y4
+	VMULPD  Y6, Y4, Y4
+	VADDPD  log17<>+0(SB), Y4, Y4
+	VMULPD  Y6, Y4, Y4
+	VADDPD  log15<>+0(SB), Y4, Y4
+	VMULPD  Y6, Y4, Y4
+	VADDPD  log13<>+0(SB), Y4, Y4
+	VMULPD  Y6, Y4, Y4
+	VADDPD  log11<>+0(SB), Y4, Y4
+	VMULPD  Y6, Y4, Y4
+	VADDPD  log9<>+0(SB), Y4, Y4
+	VMULPD  Y6, Y4, Y4
+	VADDPD  log7<>+0(SB), Y4, Y4
+	VMULPD  Y6, Y4, Y4
+	VADDPD  log5<>+0(SB), Y4, Y4
+	VMULPD  Y6, Y4, Y4
+	VADDPD  log3<>+0(SB), Y4, Y4
+	VMULPD  Y6, Y4, Y4
+	VADDPD  Y4, Y4, Y4
+	VSUBPD  Y4, Y2, Y4
+	VMULPD  Y5, Y4, Y4
+	VMULPD  ln2Low<>+0(SB), Y3, Y5
+	VSUBPD  Y5, Y4, Y4
+	VSUBPD  Y2, Y4, Y4
+	VMULPD  ln2High<>+0(SB), Y3, Y3
+	VSUBPD  Y4, Y3, Y3
+	VADDPD  Y3, Y1, Y1
+	VMULPD  minusHalf<>+0(SB), Y1, Y1
+	VSUBPD  logSqrt2Pi<>+0(SB), Y1, Y1
+	VADDPD  Y0, Y1, Y1
+	VMOVUPD Y1, (AX)
+	ADDQ    $0x20, AX
+	ADDQ    $0x20, CX
+	ADDQ    $0x20, DX
+	SUBQ    $0x04, BX
+	JMP     next
+
+done:
+	VZEROUPPER
+	RET
+
+// func logAddAVX2(dst *float64, n int, log float64)
+// Requires: AVX, AVX2
+TEXT ·logAddAVX2(SB), NOSPLIT, $0-24
+	MOVQ         dst+0(FP), AX
+	MOVQ         n+8(FP), CX
+	VBROADCASTSD log+16(FP), Y0
+
+next:
+	TESTQ      CX, CX
+	JZ         done
+	VMOVUPD    (AX), Y1
+	VSUBPD     Y0, Y1, Y2
+	VORPD      signBit<>+0(SB), Y2, Y2
+	VMAXPD     Y0, Y1, Y1
+	VCMPPD     $0x0d, expLeast<>+0(SB), Y2, Y3
+	VMAXPD     expClamp<>+0(SB), Y2, Y2
+	VMULPD     perLn2<>+0(SB), Y2, Y4
+	VADDPD     half<>+0(SB), Y4, Y4
+	VROUNDPD   $0x09, Y4, Y4
+	VMULPD     ln2High<>+0(SB), Y4, Y5
+	VSUBPD     Y5, Y2, Y2
+	VMULPD     ln2Low<>+0(SB), Y4, Y5
+	VSUBPD     Y5, Y2, Y2
+	VMULPD     exp13<>+0(SB), Y2, Y6
+	VADDPD     exp12<>+0(SB), Y6, Y6
+	VMULPD     Y2, Y6, Y6
+	VADDPD     exp11<>+0(SB), Y6, Y6
+	VMULPD     Y2, Y6, Y6
+	VADDPD     exp10<>+0(SB), Y6, Y6
+	VMULPD     Y2, Y6, Y6
+	VADDPD     exp9<>+0(SB), Y6, Y6
+	VMULPD     Y2, Y6, Y6
+	VADDPD     exp8<>+0(SB), Y6, Y6
+	VMULPD     Y2, Y6, Y6
+	VADDPD     exp7<>+0(SB), Y6, Y6
+	VMULPD     Y2, Y6, Y6
+	VADDPD     exp6<>+0(SB), Y6, Y6
+	VMULPD     Y2, Y6, Y6
+	VADDPD     exp5<>+0(SB), Y6, Y6
+	VMULPD     Y2, Y6, Y6
+	VADDPD     exp4<>+0(SB), Y6, Y6
+	VMULPD     Y2, Y6, Y6
+	VADDPD     exp3<>+0(SB), Y6, Y6
+	VMULPD     Y2, Y6, Y6
+	VADDPD     exp2<>+0(SB), Y6, Y6
+	VMULPD     Y2, Y6, Y6
+	VMULPD     Y2, Y6, Y6
+	VADDPD     Y2, Y6, Y6
+	VADDPD     one<>+0(SB), Y6, Y6
+	VMAXPD     expLowest<>+0(SB), Y4, Y2
+	VSUBPD     Y2, Y4, Y4
+	VCVTPD2DQY Y2, X2
+	VPMOVSXDQ  X2, Y5
+	VPADDQ     expBias<>+0(SB), Y5, Y5
+	VPSLLQ     $0x34, Y5, Y5
+	VMULPD     Y5, Y6, Y6
+	VCVTPD2DQY Y4, X2
+	VPMOVSXDQ  X2, Y5
+	VPADDQ     expBias<>+0(SB), Y5, Y5
+	VPSLLQ     $0x34, Y5, Y5
+	VMULPD     Y5, Y6, Y6
+	VANDPD     Y3, Y6, Y6
+	VADDPD     one<>+0(SB), Y6, Y6
+	VPSRLQ     $0x34, Y6, Y2
+	VPOR       float52<>+0(SB), Y2, Y2
+	VSUBPD     halfBits<>+0(SB), Y2, Y2
+	VPAND      fraction<>+0(SB), Y6, Y3
+	VPOR       halfExponent<>+0(SB), Y3, Y3
+	VCMPPD     $0x01, rootHalf<>+0(SB), Y3, Y4
+	VANDPD     Y4, Y3, Y5
+	VADDPD     Y5, Y3, Y3
+	VANDPD     one<>+0(SB), Y4, Y5
+	VSUBPD     Y5, Y2, Y2
+	VSUBPD     one<>+0(SB), Y3, Y3
+	VADDPD     two<>+0(SB), Y3, Y5
+	VDIVPD     Y5, Y3, Y5
+	VMULPD     Y5, Y5, Y6
+	VMULPD     log23<>+0(SB), Y6, Y4
+	VADDPD     log21<>+0(SB), Y4, Y4
+	VMULPD     Y6, Y4, Y4
+	VADDPD     log19<>+0(SB), Y4, Y4
+	VMULPD     Y6, Y4, Y4
+	VADDPD     log17<>+0(SB), Y4, Y4
+	VMULPD     Y6, Y4, Y4
+	VADDPD     log15<>+0(SB), Y4, Y4
+	VMULPD     Y6, Y4, Y4
+	VADDPD     log13<>+0(SB), Y4, Y4
+	VMULPD     Y6, Y4, Y4
+	VADDPD     log11<>+0(SB), Y4, Y4
+	VMULPD     Y6, Y4, Y4
+	VADDPD     log9<>+0(SB), Y4, Y4
+	VMULPD     Y6, Y4, Y4
+	VADDPD     log7<>+0(SB), Y4, Y4
+	VMULPD     Y6, Y4, Y4
+	VADDPD     log5<>+0(SB), Y4, Y4
+	VMULPD     Y6, Y4, Y4
+	VADDPD     log3<>+0(SB), Y4, Y4
+	VMULPD     Y6, Y4, Y4
+	VADDPD     Y4, Y4, Y4
+	VSUBPD     Y4, Y3, Y4
+	VMULPD     Y5, Y4, Y4
+	VMULPD     ln2Low<>+0(SB), Y2, Y5
+	VSUBPD     Y5, Y4, Y4
+	VSUBPD     Y3, Y4, Y4
+	VMULPD     ln2High<>+0(SB), Y2, Y2
+	VSUBPD     Y4, Y2, Y2
+	VADDPD     Y2, Y1, Y1
+	VMOVUPD    Y1, (AX)
+	ADDQ       $0x20, AX
+	SUBQ       $0x04, CX
 	JMP        next
 
 done:

@@ -93,6 +93,75 @@ func TestWeighBits(t *testing.T) {
 	}
 }
 
+// TestLogNormalBits compares with plain Go, and with the formula, for every length
+// of a tail: variances at which Log changes its way, and those that are no normal
+// numbers.
+func TestLogNormalBits(t *testing.T) {
+	const seed = 5
+	rng := rand.New(rand.NewPCG(seed, 1))
+	variances := []float64{0x1p-1022, 0.5, math.Sqrt2 / 2, math.Nextafter(math.Sqrt2/2, 0), math.Nextafter(math.Sqrt2/2, 1), 1, 1 - 0x1p-53, 1 + 0x1p-52, 2, 1e300, math.MaxFloat64}
+	for range 4000 {
+		variances = append(variances, math.Exp(40*(rng.Float64()-0.5)))
+	}
+	for from := 0; from < len(variances); {
+		n := min(1+rng.IntN(40), len(variances)-from)
+		v := append([]float64(nil), variances[from:from+n]...)
+		if rng.IntN(4) == 0 {
+			v[rng.IntN(n)] = []float64{0, 5e-324, 1e-310, math.Inf(1)}[rng.IntN(4)]
+		}
+		r, got, want := make([]float64, n), make([]float64, n), make([]float64, n)
+		for i := range r {
+			r[i] = rng.NormFloat64() * math.Sqrt(v[i])
+		}
+		r[0] = 0
+		weight := -rng.ExpFloat64()
+		LogNormal(got, r, v, weight)
+		logNormalPlain(want, r, v, weight, 0)
+		for i, x := range want {
+			if math.IsNaN(x) && math.IsNaN(got[i]) { // of variance 0 or infinity
+				got[i] = x
+			}
+		}
+		sameBits(t, "LogNormal", got, want)
+		for i, x := range v {
+			if x > 1e-300 && x < 1e300 {
+				near(t, "LogNormal", x, got[i], weight-0.5*(r[i]*r[i]/x+math.Log(2*math.Pi*x)), 1e-14, 1)
+			}
+		}
+		from += n
+	}
+}
+
+// TestLogAddBits compares with plain Go, and with the formula, for every length of
+// a tail, at distances where Exp changes its way and -Inf.
+func TestLogAddBits(t *testing.T) {
+	const seed = 6
+	rng := rand.New(rand.NewPCG(seed, 1))
+	apart := []float64{0, 0x1p-60, 1, 37, 708.5, 744.4, 745.13, 745.3, 746, 1e300, math.Inf(1)}
+	for range 4000 {
+		apart = append(apart, 40*rng.Float64())
+	}
+	for from := 0; from < len(apart); {
+		n := min(1+rng.IntN(40), len(apart)-from)
+		log := -20 * rng.Float64()
+		got, want := make([]float64, n), make([]float64, n)
+		for i, d := range apart[from : from+n] {
+			if rng.IntN(2) == 0 && d < 1e3 {
+				d = -d
+			}
+			got[i], want[i] = log-d, log-d
+		}
+		above := append([]float64(nil), got...)
+		LogAdd(got, log)
+		logAddPlain(want, log, 0)
+		sameBits(t, "LogAdd", got, want)
+		for i, x := range above {
+			near(t, "LogAdd", x, got[i], math.Max(x, log)+math.Log1p(math.Exp(-math.Abs(x-log))), 1e-14, 1)
+		}
+		from += n
+	}
+}
+
 func BenchmarkVectors(b *testing.B) {
 	const n = 1 << 20
 	src, dst, logs := make([]float64, n), make([]float64, n), make([]float64, n)
@@ -112,6 +181,10 @@ func BenchmarkVectors(b *testing.B) {
 	run("copy", func() { copy(dst, src) })
 	run("spread", func() { Spread(dst[64:n-64], src, 64, 32, weight) })
 	run("spread-plain", func() { spreadPlain(dst[64:n-64], src, 64, 32, weight, 0) })
+	run("lognormal", func() { LogNormal(dst, logs, src, 0) })
+	run("lognormal-plain", func() { logNormalPlain(dst, logs, src, 0, 0) })
+	run("logadd", func() { LogAdd(dst, -3) })
+	run("logadd-plain", func() { logAddPlain(dst, -3, 0) })
 	run("weigh", func() { Weigh(dst, src, logs, 0, 1e-250) })
 	run("weigh-plain", func() { weighPlain(dst, src, logs, 0, 1e-250, 0) })
 }

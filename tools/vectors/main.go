@@ -10,6 +10,7 @@
 package main
 
 import (
+	"fmt"
 	"math"
 
 	. "github.com/mmcloughlin/avo/build"
@@ -20,7 +21,10 @@ import (
 func main() {
 	ConstraintExpr("amd64")
 	spread()
-	weigh()
+	c := constants()
+	weigh(c)
+	logNormal(c)
+	logAdd(c)
 	Generate()
 }
 
@@ -80,98 +84,135 @@ func spread() {
 	RET()
 }
 
-// weigh is kernel.Weigh for n values, a multiple of 4, with kernel.Exp in it.
-func weigh() {
-	number := func(name string, x float64) Mem {
-		m := GLOBL(name, RODATA|NOPTR)
-		for i := range 4 {
-			DATA(8*i, U64(math.Float64bits(x)))
-		}
-		return m
-	}
-	least := number("expLeast", -745.2)
-	clamp := number("expClamp", -746)
-	perLn2 := number("expPerLn2", 1/math.Ln2)
-	half := number("expHalf", 0.5)
-	one := number("expOne", 1)
-	hi := number("expLn2Hi", 6.93147180369123816490e-01)
-	lo := number("expLn2Lo", 1.90821492927058770002e-10)
-	lowest := number("expLowest", -1021)
-	var terms []Mem
-	factorial := 1.0
-	names := []string{"expC2", "expC3", "expC4", "expC5", "expC6", "expC7", "expC8", "expC9", "expC10", "expC11", "expC12", "expC13"}
-	for i, name := range names {
-		factorial *= float64(i + 2)
-		terms = append(terms, number(name, 1/factorial))
-	}
-	bias := GLOBL("expBias", RODATA|NOPTR)
+// number is a constant in all lanes.
+func number(name string, x float64) Mem { return lanes(name, math.Float64bits(x)) }
+
+func lanes(name string, x uint64) Mem {
+	m := GLOBL(name, RODATA|NOPTR)
 	for i := range 4 {
-		DATA(8*i, U64(1023))
+		DATA(8*i, U64(x))
 	}
+	return m
+}
 
-	TEXT("weighAVX2", NOSPLIT, "func(dst, mass, logs *float64, n int, most, least float64)")
-	Pragma("noescape")
-	Doc("weighAVX2 is weighPlain for n values, a multiple of 4.")
-	dst, mass, logs := Load(Param("dst"), GP64()), Load(Param("mass"), GP64()), Load(Param("logs"), GP64())
-	n := Load(Param("n"), GP64())
-	most, enough := YMM(), YMM()
-	mostAt, err := Param("most").Resolve()
-	if err != nil {
-		panic(err)
-	}
-	leastAt, err := Param("least").Resolve()
-	if err != nil {
-		panic(err)
-	}
-	VBROADCASTSD(mostAt.Addr, most)
-	VBROADCASTSD(leastAt.Addr, enough)
+// numbers are the constants of kernel.Exp and kernel.Log.
+type numbers struct {
+	half, one, two, hi, lo                Mem
+	expLeast, expClamp, perLn2, expLowest Mem
+	expTerms, logTerms                    []Mem // from the constant term on
+	bias, fraction, halfExponent, float52 Mem
+	halfBits, rootHalf, minusHalf, logZ   Mem
+	signBit                               Mem
+}
 
-	Label("next")
-	TESTQ(n, n)
-	JZ(LabelRef("done"))
-	m, x, keep, k, r, p, t := YMM(), YMM(), YMM(), YMM(), YMM(), YMM(), YMM()
-	VMOVUPD(Mem{Base: mass}, m)
-	VMOVUPD(Mem{Base: logs}, x)
-	VSUBPD(most, x, x)
-	VCMPPD(Imm(13), least, x, keep) // x ≥ least
-	VCMPPD(Imm(13), enough, m, t)
-	VANDPD(t, keep, keep)
-	VMAXPD(clamp, x, x) // what is below is not kept
-	VMULPD(perLn2, x, k)
-	VADDPD(half, k, k)
-	VROUNDPD(Imm(9), k, k) // down
-	VMULPD(hi, k, t)
-	VSUBPD(t, x, r)
-	VMULPD(lo, k, t)
-	VSUBPD(t, r, r)
-	VMULPD(terms[len(terms)-1], r, p)
+func constants() *numbers {
+	c := &numbers{
+		half: number("half", 0.5), one: number("one", 1), two: number("two", 2),
+		hi: number("ln2High", 6.93147180369123816490e-01), lo: number("ln2Low", 1.90821492927058770002e-10),
+		expLeast: number("expLeast", -745.2), expClamp: number("expClamp", -746), perLn2: number("perLn2", 1/math.Ln2),
+		expLowest: number("expLowest", -1021), bias: lanes("expBias", 1023),
+		fraction: lanes("fraction", 1<<52-1), halfExponent: lanes("halfExponent", 1022<<52),
+		float52: number("float52", 1<<52), halfBits: number("halfBits", 1<<52+1022), rootHalf: number("rootHalf", math.Sqrt2/2),
+		minusHalf: number("minusHalf", -0.5), logZ: number("logSqrt2Pi", 0.918938533204672741780329736406),
+		signBit: lanes("signBit", 1<<63),
+	}
+	factorial := 1.0
+	for i := 2; i <= 13; i++ {
+		factorial *= float64(i)
+		c.expTerms = append(c.expTerms, number(fmt.Sprintf("exp%d", i), 1/factorial))
+	}
+	for i := 3; i <= 23; i += 2 {
+		c.logTerms = append(c.logTerms, number(fmt.Sprintf("log%d", i), 1/float64(i)))
+	}
+	return c
+}
+
+// horner is the polynomial with the terms, at x.
+func horner(terms []Mem, x VecVirtual) VecVirtual {
+	p := YMM()
+	VMULPD(terms[len(terms)-1], x, p)
 	for i := len(terms) - 2; i >= 0; i-- {
 		VADDPD(terms[i], p, p)
 		if i > 0 {
-			VMULPD(r, p, p)
+			VMULPD(x, p, p)
 		}
 	}
+	return p
+}
+
+// exp is kernel.Exp of x ≤ 0, which is changed: wrong below c.expLeast, where
+// keep is 0.
+func (c *numbers) exp(x VecVirtual) (e, keep VecVirtual) {
+	keep = YMM()
+	k, r, t := YMM(), YMM(), YMM()
+	VCMPPD(Imm(13), c.expLeast, x, keep) // x ≥ expLeast
+	VMAXPD(c.expClamp, x, x)
+	VMULPD(c.perLn2, x, k)
+	VADDPD(c.half, k, k)
+	VROUNDPD(Imm(9), k, k) // down
+	VMULPD(c.hi, k, t)
+	VSUBPD(t, x, r)
+	VMULPD(c.lo, k, t)
+	VSUBPD(t, r, r)
+	p := horner(c.expTerms, r)
 	VMULPD(r, p, p)
 	VMULPD(r, p, p)
 	VADDPD(r, p, p)
-	VADDPD(one, p, p)
+	VADDPD(c.one, p, p)
 	// Times 2^k in two steps, the second one other than 1 where the result is
 	// denormal.
 	a := YMM()
-	VMAXPD(lowest, k, a)
+	VMAXPD(c.expLowest, k, a)
 	VSUBPD(a, k, k)
-	for _, e := range []VecVirtual{a, k} {
+	for _, by := range []VecVirtual{a, k} {
 		whole := XMM()
-		VCVTPD2DQY(e, whole)
+		VCVTPD2DQY(by, whole)
 		VPMOVSXDQ(whole, t)
-		VPADDQ(bias, t, t)
+		VPADDQ(c.bias, t, t)
 		VPSLLQ(Imm(52), t, t)
 		VMULPD(t, p, p)
 	}
-	VMULPD(p, m, m)
-	VANDPD(keep, m, m)
-	VMOVUPD(m, Mem{Base: dst})
-	for _, pointer := range []Register{dst, mass, logs} {
+	return p, keep
+}
+
+// log is kernel.Log of x > 0, normal and finite.
+func (c *numbers) log(x VecVirtual) VecVirtual {
+	m, k, low, t := YMM(), YMM(), YMM(), YMM()
+	VPSRLQ(Imm(52), x, k)
+	VPOR(c.float52, k, k)
+	VSUBPD(c.halfBits, k, k) // the exponent, as a number
+	VPAND(c.fraction, x, m)
+	VPOR(c.halfExponent, m, m)
+	VCMPPD(Imm(1), c.rootHalf, m, low) // m < √½: twice as much, and one less
+	VANDPD(low, m, t)
+	VADDPD(t, m, m)
+	VANDPD(c.one, low, t)
+	VSUBPD(t, k, k)
+	f, s, z := YMM(), YMM(), YMM()
+	VSUBPD(c.one, m, f)
+	VADDPD(c.two, f, s)
+	VDIVPD(s, f, s)
+	VMULPD(s, s, z)
+	p := horner(c.logTerms, z)
+	VMULPD(z, p, p)
+	VADDPD(p, p, p)
+	VSUBPD(p, f, p)
+	VMULPD(s, p, p)
+	VMULPD(c.lo, k, t)
+	VSUBPD(t, p, p)
+	VSUBPD(f, p, p)
+	VMULPD(c.hi, k, k)
+	VSUBPD(p, k, k)
+	return k
+}
+
+// loop goes over n values, four at a time, and moves the pointers on.
+func loop(n Register, body func(), pointers ...Register) {
+	Label("next")
+	TESTQ(n, n)
+	JZ(LabelRef("done"))
+	body()
+	for _, pointer := range pointers {
 		ADDQ(Imm(32), pointer)
 	}
 	SUBQ(Imm(4), n)
@@ -179,4 +220,82 @@ func weigh() {
 	Label("done")
 	VZEROUPPER()
 	RET()
+}
+
+// broadcast loads a parameter into all lanes.
+func broadcast(name string) VecVirtual {
+	at, err := Param(name).Resolve()
+	if err != nil {
+		panic(err)
+	}
+	v := YMM()
+	VBROADCASTSD(at.Addr, v)
+	return v
+}
+
+// weigh is kernel.Weigh.
+func weigh(c *numbers) {
+	TEXT("weighAVX2", NOSPLIT, "func(dst, mass, logs *float64, n int, most, least float64)")
+	Pragma("noescape")
+	Doc("weighAVX2 is weighPlain for n values, a multiple of 4.")
+	dst, mass, logs := Load(Param("dst"), GP64()), Load(Param("mass"), GP64()), Load(Param("logs"), GP64())
+	n := Load(Param("n"), GP64())
+	most, least := broadcast("most"), broadcast("least")
+	loop(n, func() {
+		m, x, enough := YMM(), YMM(), YMM()
+		VMOVUPD(Mem{Base: mass}, m)
+		VMOVUPD(Mem{Base: logs}, x)
+		VSUBPD(most, x, x)
+		e, keep := c.exp(x)
+		VCMPPD(Imm(13), least, m, enough)
+		VANDPD(enough, keep, keep)
+		VMULPD(e, m, m)
+		VANDPD(keep, m, m)
+		VMOVUPD(m, Mem{Base: dst})
+	}, dst, mass, logs)
+}
+
+// logNormal is kernel.LogNormal.
+func logNormal(c *numbers) {
+	TEXT("logNormalAVX2", NOSPLIT, "func(dst, residual, variance *float64, n int, logWeight float64)")
+	Pragma("noescape")
+	Doc("logNormalAVX2 is logNormalPlain for n values, a multiple of 4, whose variances are normal numbers.")
+	dst, residual, variance := Load(Param("dst"), GP64()), Load(Param("residual"), GP64()), Load(Param("variance"), GP64())
+	n := Load(Param("n"), GP64())
+	weight := broadcast("logWeight")
+	loop(n, func() {
+		r, s, inverse := YMM(), YMM(), YMM()
+		VMOVUPD(Mem{Base: residual}, r)
+		VMOVUPD(Mem{Base: variance}, s)
+		VMULPD(r, r, r)
+		VMOVUPD(c.one, inverse)
+		VDIVPD(s, inverse, inverse)
+		VMULPD(inverse, r, r)
+		VADDPD(c.log(s), r, r)
+		VMULPD(c.minusHalf, r, r)
+		VSUBPD(c.logZ, r, r)
+		VADDPD(weight, r, r)
+		VMOVUPD(r, Mem{Base: dst})
+	}, dst, residual, variance)
+}
+
+// logAdd is kernel.LogAdd.
+func logAdd(c *numbers) {
+	TEXT("logAddAVX2", NOSPLIT, "func(dst *float64, n int, log float64)")
+	Pragma("noescape")
+	Doc("logAddAVX2 is logAddPlain for n values, a multiple of 4.")
+	dst, n := Load(Param("dst"), GP64()), Load(Param("n"), GP64())
+	other := broadcast("log")
+	loop(n, func() {
+		x, apart := YMM(), YMM()
+		VMOVUPD(Mem{Base: dst}, x)
+		VSUBPD(other, x, apart)
+		VORPD(c.signBit, apart, apart) // the negative of its size
+		VMAXPD(other, x, x)
+		e, keep := c.exp(apart)
+		VANDPD(keep, e, e)
+		VADDPD(c.one, e, e)
+		VADDPD(c.log(e), x, x)
+		VMOVUPD(x, Mem{Base: dst})
+	}, dst)
 }
