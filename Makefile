@@ -15,7 +15,7 @@ FUZZ_TIME ?= 60s
 # the code. A tree may be named before it exists.
 RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/livelog/... ./engine/study/sweep ./engine/study/forecast ./engine/study/tune ./engine/journal/... ./cmd/...
 
-.PHONY: build test race fuzz credibility survive bench fetch fetch-arrow fetch-clients fetch-page page page-check generate generate-check vectors \
+.PHONY: build test race fuzz credibility survive bench bench-short benchmarks fetch fetch-arrow fetch-clients fetch-page page page-check generate generate-check vectors \
 	generate-clients generate-clients-check format format-check vet lint lint-only vuln licences licences-check clean
 
 # build makes one static binary.
@@ -48,8 +48,15 @@ credibility:
 survive:
 	$(GO) run ./fixtures/survive -build build
 
-# bench runs every benchmark once over, without tests.
+# bench measures the table of speed; benchmarks runs every Go benchmark once over,
+# without tests.
 bench:
+	$(GO) run ./fixtures/bench/run -build build
+
+bench-short:
+	$(GO) run ./fixtures/bench/run -build build -short
+
+benchmarks:
 	$(GO) test -run '^$$' -bench . -benchmem ./...
 
 # fetch brings outside data for the tests, see DATA.md, the libraries that read a
