@@ -38,13 +38,13 @@ func (b *Belief) interpolate(ts *tileSpace, keep []bool) *Tiles {
 	ts.fine = fine
 	for _, i := range ts.at {
 		corner := TileAt{2*src.At[i].Col*TileSide - refineReach, 2*src.At[i].Row*TileSide - refineReach}
-		ts.window(fine, corner, false)
+		ts.window(dst, fine, corner, fineSide, fineSide, false)
 		for x, v := range src.tile(int(i)) {
 			if v != 0 && (keep == nil || keep[int(i)*tileCells+x]) {
 				refineCell(fine[x/TileSide*2*fineSide+x%TileSide*2:], v)
 			}
 		}
-		ts.window(fine, corner, true)
+		ts.window(dst, fine, corner, fineSide, fineSide, true)
 	}
 	for i, v := range dst.Mass {
 		if !(v > 0) {
@@ -74,29 +74,29 @@ func refineCell(fine []float64, v float64) {
 	row(fine[6*fineSide:], far)
 }
 
-// window copies the square of fineSide cells from a corner on out of ts.spare, or
+// window copies a rectangle of cells of t, to which ts.index belongs, out of it or
 // back into it. Tiles that there are none of hold 0.
-func (ts *tileSpace) window(fine []float64, corner TileAt, back bool) {
-	last := TileAt{corner.Col + fineSide - 1, corner.Row + fineSide - 1}
+func (ts *tileSpace) window(t *Tiles, cells []float64, corner TileAt, cols, rows int32, back bool) {
+	last := TileAt{corner.Col + cols - 1, corner.Row + rows - 1}
 	for tr := floorDiv(corner.Row, TileSide); tr <= floorDiv(last.Row, TileSide); tr++ {
 		r0, r1 := max(corner.Row, tr*TileSide), min(last.Row+1, (tr+1)*TileSide)
 		for tc := floorDiv(corner.Col, TileSide); tc <= floorDiv(last.Col, TileSide); tc++ {
 			c0, c1 := max(corner.Col, tc*TileSide), min(last.Col+1, (tc+1)*TileSide)
 			var tile []float64
 			if j, ok := ts.index[TileAt{tc, tr}]; ok {
-				tile = ts.spare.tile(int(j))
+				tile = t.tile(int(j))
 			}
 			for r := r0; r < r1; r++ {
-				o := fine[(r-corner.Row)*fineSide+c0-corner.Col:][:c1-c0]
+				o := cells[(r-corner.Row)*cols+c0-corner.Col:][:c1-c0]
 				if tile == nil {
 					clear(o)
 					continue
 				}
-				t := tile[(r-tr*TileSide)*TileSide+c0-tc*TileSide:][:c1-c0]
+				in := tile[(r-tr*TileSide)*TileSide+c0-tc*TileSide:][:c1-c0]
 				if back {
-					copy(t, o)
+					copy(in, o)
 				} else {
-					copy(o, t)
+					copy(o, in)
 				}
 			}
 		}

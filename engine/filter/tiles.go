@@ -86,12 +86,7 @@ func (b *Belief) spread(ts *tileSpace) {
 	dst.Mass = resize(dst.Mass, len(dst.At)*tileCells)
 	for i, at := range dst.At {
 		out := dst.tile(i)
-		switch (TileAt{ts.taps.col, ts.taps.row}) {
-		case TileAt{Col: 1}:
-			ts.spreadEast(out, at, src)
-			continue
-		case TileAt{Row: 1}:
-			ts.spreadNorth(out, at, src)
+		if ts.spreadTile(out, at, src) {
 			continue
 		}
 		clear(out)
@@ -107,42 +102,31 @@ func (b *Belief) spread(ts *tileSpace) {
 	b.dropTiles()
 }
 
-// spreadEast writes what the masses of src make of a tile when they are spread
-// along its rows.
-func (ts *tileSpace) spreadEast(out []float64, at TileAt, src *Tiles) {
-	beside := (int32(len(ts.taps.weight)-1) + TileSide - 1) / TileSide
-	side := int(2*beside+1) * TileSide
-	ts.fine = resize(ts.fine, TileSide*side)
-	for c := -beside; c <= beside; c++ {
-		to := ts.fine[(c+beside)*TileSide:]
-		j, ok := ts.index[TileAt{at.Col + c, at.Row}]
-		for r := range TileSide {
-			if ok {
-				copy(to[r*side:][:TileSide], src.tile(int(j))[r*TileSide:])
-			} else {
-				clear(to[r*side:][:TileSide])
-			}
-		}
+// spreadTile writes what the masses of src make of a tile, over copied rows of the
+// cells that reach it. It reports false where these are too many.
+func (ts *tileSpace) spreadTile(out []float64, at TileAt, src *Tiles) bool {
+	reach, col, row := int32(len(ts.taps.weight)-1), ts.taps.col, ts.taps.row
+	beside, above := reach*abs32(col), reach*abs32(row)
+	cols, rows := TileSide+2*beside, TileSide+2*above
+	if cols > mostCopied/rows {
+		return false
+	}
+	ts.fine = resize(ts.fine, int(cols*rows))
+	ts.window(src, ts.fine, TileAt{at.Col*TileSide - beside, at.Row*TileSide - above}, cols, rows, false)
+	first, stride := int(above*cols+beside), int(row*cols+col)
+	if cols == TileSide {
+		kernel.Spread(out, ts.fine, first, stride, ts.taps.weight)
+		return true
 	}
 	for r := range TileSide {
-		kernel.Spread(out[r*TileSide:(r+1)*TileSide], ts.fine, r*side+int(beside)*TileSide, 1, ts.taps.weight)
+		kernel.Spread(out[r*TileSide:(r+1)*TileSide], ts.fine, first+r*int(cols), stride, ts.taps.weight)
 	}
+	return true
 }
 
-// spreadNorth is spreadEast along the tile's columns.
-func (ts *tileSpace) spreadNorth(out []float64, at TileAt, src *Tiles) {
-	beside := (int32(len(ts.taps.weight)-1) + TileSide - 1) / TileSide
-	ts.fine = resize(ts.fine, int(2*beside+1)*tileCells)
-	for r := -beside; r <= beside; r++ {
-		to := ts.fine[(r+beside)*tileCells:][:tileCells]
-		if j, ok := ts.index[TileAt{at.Col, at.Row + r}]; ok {
-			copy(to, src.tile(int(j)))
-		} else {
-			clear(to)
-		}
-	}
-	kernel.Spread(out, ts.fine, int(beside)*tileCells, TileSide, ts.taps.weight)
-}
+// mostCopied is how many cells spreadTile copies for a tile at most: beyond, which
+// is long directions alone, it costs more than to gather tap by tap.
+const mostCopied = 16 * tileCells
 
 // gather adds weight times the masses at (col-dc, row-dr) to the tile at.
 func (ts *tileSpace) gather(out []float64, at TileAt, src *Tiles, dc, dr int32, weight float64) {
@@ -242,12 +226,19 @@ func sortedTiles(at []TileAt) []TileAt {
 func occupied(tile []float64) (lo, hi TileAt, any bool) {
 	lo, hi = TileAt{TileSide, TileSide}, TileAt{-1, -1}
 	for r := range int32(TileSide) {
-		for c, v := range tile[r*TileSide : (r+1)*TileSide] {
-			if v > 0 {
-				lo.Col, hi.Col = min(lo.Col, int32(c)), max(hi.Col, int32(c))
-				lo.Row, hi.Row = min(lo.Row, r), max(hi.Row, r)
-			}
+		row := tile[r*TileSide : (r+1)*TileSide]
+		first, last := int32(0), int32(TileSide-1)
+		for first < TileSide && !(row[first] > 0) {
+			first++
 		}
+		if first == TileSide {
+			continue
+		}
+		for !(row[last] > 0) {
+			last--
+		}
+		lo.Col, hi.Col = min(lo.Col, first), max(hi.Col, last)
+		lo.Row, hi.Row = min(lo.Row, r), r
 	}
 	return lo, hi, hi.Row >= 0
 }
@@ -264,12 +255,14 @@ func (b *Belief) dropTiles() {
 	b.dropEmptyTiles()
 }
 
+func positive(v float64) bool { return v > 0 }
+
 // dropEmptyTiles removes tiles without mass.
 func (b *Belief) dropEmptyTiles() {
 	t := &b.Tiles
 	j := 0
 	for i := range t.At {
-		if _, _, any := occupied(t.tile(i)); !any {
+		if !slices.ContainsFunc(t.tile(i), positive) {
 			continue
 		}
 		if i != j {

@@ -4,10 +4,10 @@ package kernel
 //
 //	dst[i] = weight[0]·src[at+i] + Σ weight[n]·(src[at+i-n·stride] + src[at+i+n·stride]),
 //
-// added from the middle outwards, first below and then above. All that it reads
-// must lie in src, which dst must not overlap.
+// added from the middle outwards, first at i-n·stride. All that it reads must lie
+// in src, which dst must not overlap. The stride may be negative.
 func Spread(dst, src []float64, at, stride int, weight []float64) {
-	reach := (len(weight) - 1) * stride
+	reach := (len(weight) - 1) * max(stride, -stride)
 	if len(dst) == 0 {
 		return
 	}

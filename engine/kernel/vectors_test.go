@@ -26,10 +26,10 @@ func TestSpreadBits(t *testing.T) {
 	const seed = 3
 	rng := rand.New(rand.NewPCG(seed, 1))
 	for n := range 75 {
-		for _, stride := range []int{1, 32} {
+		for _, stride := range []int{1, 32, -31} {
 			for _, reach := range []int{0, 1, 2, 7} {
-				at := reach * stride
-				src := make([]float64, at+n+reach*stride)
+				at := reach * max(stride, -stride)
+				src := make([]float64, at+n+at)
 				for i := range src {
 					src[i] = math.Exp(-700 * rng.Float64())
 					if rng.IntN(4) == 0 {
