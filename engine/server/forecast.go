@@ -103,8 +103,11 @@ func (s *Server) Forecast(req *leadlinev1.ForecastRequest, stream grpc.ServerStr
 		f.Route = route.Name
 		return fromForecast(f), nil
 	}()
-	if err := errors.Join(err, gone); err != nil {
+	switch {
+	case err != nil:
 		return err
+	case gone != nil:
+		return gone
 	}
 	return stream.Send(&leadlinev1.ForecastResponse{News: &leadlinev1.ForecastResponse_Forecast{Forecast: f}})
 }

@@ -11,6 +11,7 @@ import (
 
 	"google.golang.org/grpc"
 	"google.golang.org/grpc/codes"
+	"google.golang.org/grpc/status"
 	"google.golang.org/protobuf/proto"
 
 	"leadline/engine/geo"
@@ -114,7 +115,7 @@ func TestForecast(t *testing.T) {
 	}{
 		"an unknown map":   {func(r *leadlinev1.ForecastRequest) { r.Map = "moon" }, codes.NotFound, `no map "moon"`},
 		"an unknown suite": {func(r *leadlinev1.ForecastRequest) { r.Suite = "tank" }, codes.NotFound, `no suite "tank"`},
-		"no sensors":       {func(r *leadlinev1.ForecastRequest) { r.Suite = "none" }, codes.InvalidArgument, "declares no sensors"},
+		"no sensors":       {func(r *leadlinev1.ForecastRequest) { r.Suite = "none" }, codes.InvalidArgument, "forecast: the suite declares no sensors"},
 		"no speed":         {func(r *leadlinev1.ForecastRequest) { r.SpeedMps = 0 }, codes.InvalidArgument, "speed_mps is missing"},
 		"too slow":         {func(r *leadlinev1.ForecastRequest) { r.SpeedMps = 0.1 }, codes.InvalidArgument, "8.4 hours"},
 		"no route":         {func(r *leadlinev1.ForecastRequest) { r.Route = nil }, codes.InvalidArgument, "route_file or route_points"},
@@ -131,6 +132,9 @@ func TestForecast(t *testing.T) {
 		k.change(wrong)
 		_, err := forecastBy(limited(t), conn, wrong)
 		wantStatus(t, what, err, k.code, k.words)
+		if said := status.Convert(err).Message(); strings.Contains(said, "rpc error") {
+			t.Errorf("%s: said twice: %s", what, said)
+		}
 	}
 }
 

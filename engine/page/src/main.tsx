@@ -1,6 +1,7 @@
 // The page: where every vehicle may be, and how sure that is.
 import { effect } from "@preact/signals";
 import { render } from "preact";
+import { Ahead } from "./ahead";
 import { Alarms, AlarmSound } from "./alarms";
 import { Chances } from "./chances";
 import { duration } from "./format";
@@ -99,6 +100,17 @@ function Page() {
                 {chosen.value || "No vehicle"} <small>{v === "now" ? "how sure, and why" : "chances"}</small>
               </h2>
               {v === "now" ? <Figures /> : <Chances />}
+            </section>
+          </>
+        )}
+        {v === "ahead" && (
+          <>
+            <MapView key="ahead" />
+            <section class="side" tabIndex={0} aria-label="Ahead: a forecast along a route">
+              <h2>
+                Ahead <small>how good positions will be</small>
+              </h2>
+              <Ahead />
             </section>
           </>
         )}

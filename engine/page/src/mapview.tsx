@@ -3,13 +3,14 @@ import { batch, computed, effect, signal } from "@preact/signals";
 import { useEffect, useRef } from "preact/hooks";
 import { beliefScale, css, decades, ground as groundColour } from "./colour";
 import { figure, length, percent } from "./format";
-import { ground, groundTrouble, refine, type Ground } from "./ground";
+import { ground, groundTrouble, refine, type Box, type Ground } from "./ground";
 import { chosen, chosenKnown, close as latest, fix, past } from "./live";
 import { beginTop } from "./paintall";
-import { boxOf, drawGround, placeBelief, toEN, type Placed, type View } from "./paint";
+import { begin, boxOf, drawGround, placeBelief, toEN, type Placed, type View } from "./paint";
 import { close, closed, corners, point, spot, tool } from "./pointing";
 import type { EN, LonLat } from "./project";
 import { dark } from "./settings";
+import { lookAt, stage, type Stage } from "./stage";
 import { onRoads, radiiHold } from "./worry";
 
 const view = signal<View>({ e: 0, n: 0, mPerPx: 2, width: 0, height: 0 });
@@ -17,8 +18,9 @@ const view = signal<View>({ e: 0, n: 0, mPerPx: 2, width: 0, height: 0 });
 const along = signal(true);
 const fitted = signal(""); // vehicle and map that the view was made for
 
-const current = computed(() => latest.value?.posterior ?? chosenKnown.value?.posterior);
-const under = computed<Ground | undefined>(() => (current.value ? ground(current.value.map).value : undefined));
+const current = computed(() => (stage.value ? undefined : (latest.value?.posterior ?? chosenKnown.value?.posterior)));
+const mapName = computed(() => stage.value?.map ?? current.value?.map);
+const under = computed<Ground | undefined>(() => (mapName.value ? ground(mapName.value).value : undefined));
 
 /** How long the last drawing of a belief took, ms: placing and painting. */
 export const took = { place: 0, paint: 0 };
@@ -30,8 +32,19 @@ function fit(g: Ground, at: EN, radiusM: number) {
   view.value = { ...v, e: at.e, n: at.n, mPerPx: Math.max((2 * reach) / Math.max(200, Math.min(v.width, v.height)), 0.05) };
 }
 
-function fitMap(g: Ground) {
-  const [b, v] = [g.whole.box, view.peek()];
+const fitMap = (g: Ground) => fitBox(g.whole.box);
+
+/** Fits the view to the points of a stage, or to its map. */
+function fitStage(g: Ground, s: Stage) {
+  const at = s.points.map((p) => g.frame.forward(p));
+  if (at.length === 0) return fitMap(g);
+  const [e, n] = [at.map((p) => p.e), at.map((p) => p.n)];
+  const room = 100;
+  fitBox({ west: Math.min(...e) - room, east: Math.max(...e) + room, south: Math.min(...n) - room, north: Math.max(...n) + room });
+}
+
+function fitBox(b: Box) {
+  const v = view.peek();
   along.value = false;
   view.value = {
     ...v,
@@ -63,7 +76,7 @@ function draws(run: () => void) {
   let asked = 0;
   const off = effect(() => {
     // Everything that is drawn is read here, so that the effect runs again.
-    void [view.value, under.value, latest.value, past.value, fix.value, dark.value, spot.value, corners.value, closed.value, current.value];
+    void [view.value, under.value, latest.value, past.value, fix.value, dark.value, spot.value, corners.value, closed.value, current.value, stage.value, lookAt.value];
     if (!asked) asked = requestAnimationFrame(() => ((asked = 0), run()));
   });
   return () => {
@@ -103,20 +116,29 @@ export function MapView() {
     let lastGround = "";
     let wait: ReturnType<typeof setTimeout> | undefined;
     const stop = draws(() => {
-      const [g, p] = [under.peek(), current.peek()];
-      if (!g || !p || view.peek().width === 0) {
+      const [g, p, s] = [under.peek(), current.peek(), stage.peek()];
+      if (!g || !(p || s) || view.peek().width === 0) {
         for (const c of [low.current, top.current]) c?.getContext("2d")?.clearRect(0, 0, c.width, c.height);
         lastGround = "";
         return;
       }
-      const at = g.frame.forward(p.mean as LonLat);
-      const name = `${chosen.peek()} ${g.map}`;
+      const name = s?.key ?? `${chosen.peek()} ${g.map}`;
+      const at = p ? g.frame.forward(p.mean as LonLat) : { e: 0, n: 0 };
       if (fitted.peek() !== name) {
         batch(() => {
           fitted.value = name;
+          if (s) return fitStage(g, s);
           along.value = true;
-          fit(g, at, p.radii?.radius95M ?? 1000);
+          fit(g, at, p!.radii?.radius95M ?? 1000);
         });
+      } else if (s) {
+        const go = lookAt.peek();
+        if (go) {
+          batch(() => {
+            lookAt.value = undefined;
+            view.value = { ...view.peek(), ...g.frame.forward(go) };
+          });
+        }
       } else if (along.peek()) {
         const v = view.peek();
         // It moves on when the vehicle has left the middle third.
@@ -131,7 +153,8 @@ export function MapView() {
         wait = setTimeout(() => void refine(g.map, boxOf(v), v.mPerPx * 0.7), 200);
       }
       const began = performance.now();
-      beginTop(top.current!, v, g, p, belief(g));
+      if (s) s.paint(begin(top.current!, v), v, g, dark.peek());
+      else beginTop(top.current!, v, g, p!, belief(g));
       took.paint = performance.now() - began;
     });
     return () => {
@@ -189,7 +212,8 @@ export function MapView() {
   }, []);
 
   const [p, g] = [current.value, under.value];
-  const trouble = p && groundTrouble.value[p.map];
+  const s = stage.value;
+  const trouble = groundTrouble.value[mapName.value ?? ""];
   const drawingIt = tool.value !== "none";
   return (
     <section class="map" aria-label="Map">
@@ -199,7 +223,7 @@ export function MapView() {
         tabIndex={0}
         role="application"
         aria-roledescription="map"
-        aria-label={`Map of ${p?.map ?? "no map"} with the belief of ${chosen.value || "no vehicle"}`}
+        aria-label={`Map of ${mapName.value ?? "no map"} with ${s ? s.label : `the belief of ${chosen.value || "no vehicle"}`}`}
         aria-describedby="map-keys"
         onKeyDown={keys}
         onPointerDown={down}
@@ -214,14 +238,14 @@ export function MapView() {
       <p id="map-keys" class="unseen">
         Arrow keys move the map, plus and minus change its scale, 0 shows all of it, v goes along with the vehicle. With a tool in hand, space points at the middle, and Enter closes an area.
       </p>
-      {!g && <p class="cover">{trouble || (p ? `The map ${p.map} is on its way.` : "Choose a vehicle to see where it may be.")}</p>}
+      {!g && <p class="cover">{trouble || (mapName.value ? `The map ${mapName.value} is on its way.` : "Choose a vehicle to see where it may be.")}</p>}
       {g && (
         <>
           <div class="buttons">
             <button onClick={() => zoom(1 / 1.5)} aria-label="Larger scale" title="Larger scale (+)">+</button>
             <button onClick={() => zoom(1.5)} aria-label="Smaller scale" title="Smaller scale (−)">−</button>
             <button onClick={() => fitMap(g)} title="Show the whole map (0)">Whole map</button>
-            <button
+            {p && <button
               aria-pressed={along.value}
               title="Go along with the vehicle (v)"
               onClick={() => {
@@ -230,7 +254,7 @@ export function MapView() {
               }}
             >
               Go along
-            </button>
+            </button>}
           </div>
           <Legend g={g} />
         </>
@@ -250,7 +274,7 @@ function barOf(mPerPx: number, most: number): number {
 }
 
 function Legend({ g }: { g: Ground }) {
-  const b = latest.value?.belief;
+  const b = stage.value ? undefined : latest.value?.belief;
   const bar = barOf(view.value.mPerPx, 110);
   const stops = (of: (t: number) => string) => `linear-gradient(to right, ${Array.from({ length: 9 }, (_, i) => of(i / 8)).join(",")})`;
   const scale = beliefScale(dark.value);
@@ -285,6 +309,7 @@ function Legend({ g }: { g: Ground }) {
           <div>{r.highestM <= 0 ? "depth, as height" : "height"} of the ground</div>
         </div>
       )}
+      {stage.value?.legend}
       {p && (
         <ul>
           <li><i class="sign circle" /> 95 % circle{radiiHold(p) ? "" : ", if not lost"}</li>

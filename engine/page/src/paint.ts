@@ -290,6 +290,11 @@ export function drawMark(ctx: Ctx, v: View, at: EN, text: string, shape: "disc" 
   ctx.font = "600 11px system-ui, sans-serif";
   ctx.textAlign = "center";
   ctx.textBaseline = "middle";
+  if (shape !== "disc") {
+    ctx.strokeStyle = c.halo;
+    ctx.lineWidth = 4;
+    ctx.strokeText(text, x, y - 14);
+  }
   ctx.fillStyle = shape === "disc" ? c.halo : colour;
   ctx.fillText(text, x, shape === "disc" ? y + 0.5 : y - 14);
 }

@@ -1,11 +1,11 @@
 // A figure over time.
 import { useEffect, useLayoutEffect, useRef } from "preact/hooks";
 import uPlot from "uplot";
-import { figure } from "./format";
-import { dark } from "./settings";
+import { figure, length } from "./format";
+import { dark, units } from "./settings";
 
 export type Line = { label: string; values: (number | null)[]; dash?: number[]; colour: "first" | "second" | "quiet" };
-type Props = { title: string; unit: string; times: number[]; lines: Line[]; band?: boolean; log?: boolean; says: string };
+type Props = { title: string; unit: string; times: number[]; lines: Line[]; band?: boolean; log?: boolean; says: string; over?: "the way" };
 
 const colours = () =>
   dark.value
@@ -16,7 +16,7 @@ const colours = () =>
 export function Plot(props: Props) {
   const box = useRef<HTMLDivElement>(null);
   const plot = useRef<uPlot | undefined>(undefined);
-  const shape = JSON.stringify([dark.value, props.unit, props.band, props.log, props.lines.map((l) => l.label)]);
+  const shape = JSON.stringify([dark.value, units.value, props.unit, props.band, props.log, props.lines.map((l) => l.label)]);
   // At once: an effect that waits for a quiet moment leaves a busy page without lines.
   useLayoutEffect(() => {
     const c = colours();
@@ -28,9 +28,9 @@ export function Plot(props: Props) {
         legend: { show: false },
         cursor: { y: false, drag: { x: false, y: false }, points: { size: 5 } },
         tzDate: (s) => uPlot.tzDate(new Date(s * 1000), "UTC"),
-        scales: { x: { time: true }, y: props.log ? { distr: 3 } : { range: (_, a, b) => spread(a, b) } },
+        scales: { x: { time: !props.over }, y: props.log ? { distr: 3 } : { range: (_, a, b) => spread(a, b) } },
         axes: [
-          { ...axis, space: 70, size: 26, gap: 3, values: (_, ts) => ts.map((t) => new Date(t * 1000).toISOString().slice(11, 19)) },
+          { ...axis, space: 70, size: 26, gap: 3, values: (_, ts) => ts.map((t) => (props.over ? length(t) : new Date(t * 1000).toISOString().slice(11, 19))) },
           { ...axis, size: 50, gap: 3, space: 24, values: (_, vs) => labels(vs) },
         ],
         series: [{}, ...props.lines.map((l) => ({ label: l.label, stroke: c[l.colour], width: l.colour === "quiet" ? 1 : 1.8, dash: l.dash, points: { show: false } }))],
@@ -57,7 +57,7 @@ export function Plot(props: Props) {
       <figcaption>
         {props.title} <small>{props.unit}</small>
       </figcaption>
-      <div ref={box} role="img" aria-label={`${props.title}, ${props.unit}, over UTC: ${props.says}`} />
+      <div ref={box} role="img" aria-label={`${props.title}, ${props.unit}, over ${props.over ?? "UTC"}: ${props.says}`} />
     </figure>
   );
 }

@@ -1,11 +1,13 @@
-// What the person points at on the map: a place with a radius, or an area.
+// What the person points at on the map: a place with a radius, an area, or a route.
 import { signal } from "@preact/signals";
 import type { LonLat } from "./project";
 
-export const tool = signal<"none" | "place" | "area">("none");
+export const tool = signal<"none" | "place" | "area" | "route">("none");
 export const spot = signal<LonLat | undefined>(undefined);
 export const spotRadiusM = signal(25);
 export const corners = signal<LonLat[]>([]);
+/** The corners of a route that is planned. */
+export const way = signal<LonLat[]>([]);
 export const closed = signal(false);
 
 /** Points at a place with the tool in hand. */
@@ -13,6 +15,8 @@ export function point(p: LonLat) {
   if (tool.value === "place") {
     forgetArea();
     spot.value = p;
+  } else if (tool.value === "route") {
+    if (way.value.length < 200) way.value = [...way.value, p];
   } else if (tool.value === "area") {
     if (closed.value) forgetArea();
     spot.value = undefined;

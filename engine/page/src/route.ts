@@ -6,6 +6,7 @@ import { tool } from "./pointing";
 export const views = [
   ["now", "Now"],
   ["chances", "Chances"],
+  ["ahead", "Ahead"],
   ["alarms", "Alarms"],
   ["maps", "Maps and suites"],
 ] as const;
