@@ -75,10 +75,11 @@ func (e *eraser) find(ctx context.Context, st jetstream.Stream) error {
 	copied := false
 	err := messages(ctx, st, cfg, func(m message) error {
 		var k pack
-		if k.read(m.data) != nil {
-			return nil // it is damaged, as was said when the journal was opened
-		}
+		whole := k.read(m.data) == nil // or it is damaged, as was said when the journal was opened
 		copied = copied || m.subject != e.p.subject
+		if !whole {
+			return nil
+		}
 		if _, known := e.at[k.number]; !known {
 			e.numbers = append(e.numbers, k.number)
 		}
