@@ -200,10 +200,8 @@ func plannedRoute(req *leadlinev1.ForecastRequest) (route *forecast.Route, field
 	if !(lengthM <= maxRouteM) {
 		return nil, field, badField(field, "forecast: %s is %.0f km long: at most %.0f are forecast; cut it", field, lengthM/1000, maxRouteM/1000)
 	}
-	lasts, slow := 0.0, "speed_mps"
-	if v := req.GetSpeedMps(); v > 0 {
-		lasts = lengthM / v
-	} else {
+	lasts, slow := lengthM/req.GetSpeedMps(), "speed_mps"
+	if !(req.GetSpeedMps() > 0) {
 		lasts, slow = route.Times[len(route.Times)-1].Sub(route.Times[0]).Seconds(), field
 	}
 	if lasts > maxRouteS {
