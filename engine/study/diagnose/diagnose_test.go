@@ -61,7 +61,7 @@ func named(r *Report) (out []string) {
 }
 
 // TestFindsPlantedMistakes plants each usual mistake in simulated logs. The
-// diagnosis knows the log and the map alone. In the short form most of them twice
+// diagnosis knows the log and the map alone. In the short form each sort twice
 // each, within an opening that is enough for them; in the long one all ten times,
 // of which nine must be named.
 func TestFindsPlantedMistakes(t *testing.T) {

@@ -317,7 +317,7 @@ func TestParquetJavaScript(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	module := filepath.Join(dir, "node_modules", "hyparquet", "src", "hyparquet.js")
+	module := filepath.Join(dir, "node_modules", "hyparquet", "src", "index.js")
 	if _, err := os.Stat(module); err != nil {
 		t.Skipf("outside library hyparquet is not here: make fetch-arrow")
 	}
