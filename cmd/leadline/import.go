@@ -247,16 +247,16 @@ func (o *importOptions) print(w io.Writer, t *logfile.Tally) error {
 	return err
 }
 
+// stampTime is a time as people read it.
 func stampTime(at time.Time) string { return at.Format("2006-01-02T15:04:05.999Z") }
 
 // printTally prints what became of a log.
 func printTally(w io.Writer, t *logfile.Tally) {
-	stamp := stampTime
 	if t.From != nil {
-		fmt.Fprintf(w, "  %-14s %s to %s, %v\n", "time", stamp(*t.From), stamp(*t.To), t.To.Sub(*t.From).Round(time.Millisecond))
+		fmt.Fprintf(w, "  %-14s %s to %s, %v\n", "time", stampTime(*t.From), stampTime(*t.To), t.To.Sub(*t.From).Round(time.Millisecond))
 	}
 	for _, c := range t.Measurements {
-		fmt.Fprintf(w, "  %-14s %-18s %8d, %s to %s\n", c.Sensor, c.Kind, c.Count, stamp(c.From), stamp(c.To))
+		fmt.Fprintf(w, "  %-14s %-18s %8d, %s to %s\n", c.Sensor, c.Kind, c.Count, stampTime(c.From), stampTime(c.To))
 	}
 	if text := passedOver(t, ""); text != "" {
 		fmt.Fprintf(w, "  %-14s %s\n", "passed over", text)

@@ -1,31 +1,19 @@
 package main
 
 import (
-	"bufio"
-	"bytes"
 	"context"
 	"errors"
 	"fmt"
-	"io"
-	"io/fs"
 	"os"
 	"os/signal"
-	"path/filepath"
-	"strconv"
-	"strings"
 	"syscall"
 	"time"
 
 	"github.com/spf13/cobra"
 
-	"leadline/engine/drivefile"
-	"leadline/engine/sensor"
-	"leadline/engine/study/replay"
 	"leadline/engine/study/results"
 	"leadline/engine/study/score"
 	"leadline/engine/study/sweep"
-	"leadline/network/roadfile"
-	"leadline/terrain/heightfile"
 )
 
 type replayOptions struct {
@@ -158,28 +146,8 @@ func (o *replayOptions) job(maps map[string]*mapFile, paths []string) (*sweep.Jo
 		EstimateTruth: o.estimateTruth, HoldOutFixes: o.holdOutFixes,
 		Version: versionText(), Program: programSHA256(), Command: append([]string{"leadline"}, os.Args[1:]...),
 	}
-	for _, form := range o.also {
-		switch form {
-		case "gpx":
-			job.GPX = true
-		case "parquet":
-			job.Parquet = true
-		default:
-			return nil, fmt.Errorf("--also %q is no form of a track: give gpx or parquet", form)
-		}
-	}
-	if len(o.also) > 0 && o.dir == "" {
-		return nil, errors.New("--also needs --out, where tracks are written")
-	}
-	for _, text := range o.beliefAt {
-		m, err := moment(text)
-		if err != nil {
-			return nil, err
-		}
-		job.Beliefs = append(job.Beliefs, m)
-	}
-	if len(o.beliefAt) > 0 && o.dir == "" {
-		return nil, errors.New("--belief-at needs --out, where beliefs are written")
+	if err := o.outputs(job); err != nil {
+		return nil, err
 	}
 	switch n := len(o.truthOffset); {
 	case n == 3:
@@ -203,18 +171,6 @@ func (o *replayOptions) job(maps map[string]*mapFile, paths []string) (*sweep.Jo
 		job.Drives = append(job.Drives, *d)
 	}
 	return job, nil
-}
-
-// moment reads a time of --belief-at.
-func moment(text string) (replay.Moment, error) {
-	if s, err := strconv.ParseFloat(text, 64); err == nil && s >= 0 && s <= 1e9 {
-		return replay.Moment{AfterS: s}, nil
-	}
-	t, err := time.Parse(time.RFC3339Nano, text)
-	if err != nil || t.Unix() < 1 || t.Year() > 2261 {
-		return replay.Moment{}, fmt.Errorf("--belief-at is %q: give a time such as 2030-05-01T12:00:05.5Z, or seconds after the first measurement, such as 5.5", text)
-	}
-	return replay.Moment{At: sensor.Time(t.UnixNano())}, nil
 }
 
 // vary adds the settings that the flags or a file ask for.
@@ -316,87 +272,4 @@ func (o *replayOptions) say(ctx context.Context, c *cobra.Command, m *mapFile, r
 		}{run.Score, why})
 	}
 	return why.print(out)
-}
-
-// driveHeader reads a drive's header, and how long the file is.
-func driveHeader(path string) (drivefile.Header, int64, error) {
-	f, b, err := openDrive(path)
-	if err != nil {
-		return drivefile.Header{}, 0, err
-	}
-	defer f.Close()
-	info, err := f.Stat()
-	if err != nil {
-		return drivefile.Header{}, 0, err
-	}
-	rec, err := drivefile.NewReader(b, path).Read()
-	if err != nil {
-		return drivefile.Header{}, 0, err
-	}
-	return *rec.Header, info.Size(), nil
-}
-
-// openDrive opens a drive file.
-func openDrive(path string) (*os.File, *bufio.Reader, error) {
-	f, err := os.Open(path)
-	if errors.Is(err, fs.ErrNotExist) {
-		return nil, nil, fmt.Errorf("there is no drive file %s: check the path", path)
-	}
-	if err != nil {
-		return nil, nil, err
-	}
-	b := bufio.NewReader(f)
-	if err := startsAsDrive(b, path); err != nil {
-		f.Close()
-		return nil, nil, err
-	}
-	return f, b, nil
-}
-
-// readDrive reads a drive file whole.
-func readDrive(path string) (*drivefile.Drive, error) {
-	f, b, err := openDrive(path)
-	if err != nil {
-		return nil, err
-	}
-	defer f.Close()
-	return drivefile.ReadAll(b, path)
-}
-
-// startsAsDrive tells logs of other kinds from drive files, whose lines begin
-// with a brace.
-func startsAsDrive(b *bufio.Reader, path string) error {
-	head, err := b.Peek(512)
-	if err != nil && !errors.Is(err, io.EOF) {
-		return fmt.Errorf("%s: %w", path, err)
-	}
-	head = bytes.TrimLeft(head, " \t\r\n\ufeff")
-	if strings.HasSuffix(path, drivefile.Suffix) || len(head) == 0 || head[0] == '{' {
-		return nil
-	}
-	how := "--columns COLUMNS.yaml "
-	if head[0] == '$' || head[0] == '!' || head[0] == '\\' {
-		how = ""
-	}
-	return fmt.Errorf("%s is no drive file: make one of a log with `leadline import %s %s-o %s%s --vehicle NAME`", path, path, how, driveName(path), drivefile.Suffix)
-}
-
-// driveName is a drive file's name without folder and suffix.
-func driveName(path string) string {
-	name := filepath.Base(path)
-	if n, ok := strings.CutSuffix(name, drivefile.Suffix); ok && n != "" {
-		return n
-	}
-	return strings.TrimSuffix(name, filepath.Ext(name))
-}
-
-// headerMap finds the map that a drive's header names, in the drive's folder.
-func headerMap(name, drivePath string) (string, error) {
-	if name == "" {
-		return "", fmt.Errorf("%s: its header names no map: give one with --map", drivePath)
-	}
-	if path, ok := beside(drivePath, name, "", roadfile.Suffix, heightfile.Suffix); ok {
-		return path, nil
-	}
-	return "", fmt.Errorf("%s: the map %q that its header names is not beside the drive: give the file with --map", drivePath, name)
 }

@@ -130,6 +130,16 @@ func TestRadiiExact(t *testing.T) {
 		town = append(town, gauss{[2]float64{0.0255, 0.0245}[i%2], d * math.Sin(angle), d * math.Cos(angle), turn(4.6, 2.5, float64(i))})
 	}
 	add("a town", town...)
+	// All at one distance, where nothing but the widths tells radii apart: hairs
+	// that are not much narrower than long, just below hairM2, and longer than dotM2.
+	for _, ratio := range []float64{0.51, 0.7, 0.97} {
+		var ring []gauss
+		for i := range 40 {
+			angle := 2 * math.Pi * float64(i) / 40
+			ring = append(ring, gauss{1. / 40, 6000 * math.Sin(angle), 6000 * math.Cos(angle), turn(11.5/ratio, 11.5, float64(i))})
+		}
+		add(fmt.Sprintf("a ring, axes %v", ratio), ring...)
+	}
 	for _, name := range names {
 		in := planeInput(cases[name])
 		s, p := summarize(t, Options{}, in)

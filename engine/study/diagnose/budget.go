@@ -56,9 +56,12 @@ func (c *course) cut(all, goOn []*entrant, round int) {
 		sum += e.work()
 	}
 	if sum > c.budget.most {
-		c.rounds, c.whole, c.isCut = c.rounds[:round+1], c.rounds, true
+		c.rounds, c.whole = c.rounds[:round+1], c.rounds
 	}
 }
+
+// cutShort reports whether all but the finalists end before the opening does.
+func (c *course) cutShort() bool { return c.whole != nil }
 
 // left reports whether there is work left to do.
 func (c *course) left() bool { return c.budget.spent < c.budget.most }

@@ -108,7 +108,7 @@ func Run(d *drivefile.Drive, c session.Config, o Options) (*Report, error) {
 		return nil, err
 	}
 	end := k.rounds[len(k.rounds)-1]
-	r.OpeningS, r.CutShort = end.Seconds(k.start), k.isCut
+	r.OpeningS, r.CutShort = end.Seconds(k.start), k.cutShort()
 	for _, ev := range k.events {
 		if ev.Time <= end {
 			r.Measurements++

@@ -16,7 +16,7 @@ func (c *course) finals(r *Report, base *entrant, tried []*entrant) (*entrant, [
 			ms = append(ms, *k.mistake)
 		}
 	}
-	c.rounds, c.whole = c.whole, nil
+	c.rounds = c.whole
 	es := c.race(ms)
 	if len(es[0].nats) >= len(base.nats) {
 		base = es[0]

@@ -324,8 +324,8 @@ func TestCutShort(t *testing.T) {
 				short++
 			}
 		}
-		if !k.isCut || whole > finalists || short < 10 {
-			t.Errorf("%s: cut %v, %d finalists, %d others", c.name, k.isCut, whole, short)
+		if !k.cutShort() || whole > finalists || short < 10 {
+			t.Errorf("%s: cut %v, %d finalists, %d others", c.name, k.cutShort(), whole, short)
 		}
 	}
 }

@@ -21,9 +21,10 @@ type course struct {
 	rounds []sensor.Time // ascending; the last is the end
 	each   func(n int, f func(i int))
 	budget budget
-	isCut  bool          // all but the finalists end before the opening does, for want of budget
-	whole  []sensor.Time // the rounds of the opening, once it is cut
-	mayCut bool          // in the first race
+	// whole are the rounds of the whole opening where, for want of budget, all but
+	// the finalists end before it does; else nil.
+	whole  []sensor.Time
+	mayCut bool // in the first race
 	// tick hears how much of a round is done, one at a time.
 	tick func(round int, share float64)
 }
@@ -111,7 +112,7 @@ func (c *course) advance(e *entrant, round int) {
 		}
 	}
 	most := math.Inf(1)
-	if !e.isLog() || c.isCut && !c.mayCut { // what it was compared with before stands
+	if !e.isLog() || c.cutShort() && !c.mayCut { // what it was compared with before stands
 		most = c.budget.most / costlyShare
 	}
 	if e.err = e.run.advance(c.rounds[round], round == len(c.rounds)-1, most); e.err != nil {

@@ -61,7 +61,7 @@ func (c *course) tryAll(r *Report, o Options) error {
 		tried = append(tried, more...)
 		c.compare(r, base, tried)
 	}
-	if c.isCut {
+	if c.cutShort() {
 		base, tried = c.finals(r, base, tried)
 		c.compare(r, base, tried)
 	}
