@@ -11,6 +11,7 @@ import { List } from "./list";
 import { chosen, choose, heardAt, link, openAlarms, order, start } from "./live";
 import { MapView } from "./mapview";
 import { Maps } from "./maps";
+import { PastRuns } from "./past";
 import { address, route, shown, views } from "./route";
 import { clock, lightness, units } from "./settings";
 
@@ -111,6 +112,17 @@ function Page() {
                 Ahead <small>how good positions will be</small>
               </h2>
               <Ahead />
+            </section>
+          </>
+        )}
+        {v === "past" && (
+          <>
+            <MapView key="past" />
+            <section class="side" tabIndex={0} aria-label="Past runs">
+              <h2>
+                Past runs <small>what they said, and when</small>
+              </h2>
+              <PastRuns />
             </section>
           </>
         )}

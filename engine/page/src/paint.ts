@@ -224,7 +224,7 @@ export function drawBelief(ctx: Ctx, v: View, b: Placed, dark: boolean) {
 }
 
 /** Draws a line through places, broken where one is not known. */
-export function drawTrack(ctx: Ctx, v: View, points: (EN | undefined)[], dark: boolean) {
+export function drawTrack(ctx: Ctx, v: View, points: (EN | undefined)[], dark: boolean, colour: "track" | "area" = "track") {
   ctx.beginPath();
   points.forEach((p, i) => {
     if (!p) return;
@@ -233,7 +233,7 @@ export function drawTrack(ctx: Ctx, v: View, points: (EN | undefined)[], dark: b
     else ctx.moveTo(x, y);
   });
   ctx.lineJoin = "round";
-  ctx.strokeStyle = ink(dark).track;
+  ctx.strokeStyle = ink(dark)[colour];
   ctx.lineWidth = 1.8;
   ctx.setLineDash([1, 3.5]);
   ctx.lineCap = "round";

@@ -5,7 +5,7 @@ import { figure, length } from "./format";
 import { dark, units } from "./settings";
 
 export type Line = { label: string; values: (number | null)[]; dash?: number[]; colour: "first" | "second" | "quiet" };
-type Props = { title: string; unit: string; times: number[]; lines: Line[]; band?: boolean; log?: boolean; says: string; over?: "the way" };
+type Props = { title: string; unit: string; times: number[]; lines: Line[]; band?: boolean; log?: boolean; says: string; over?: "the way"; span?: boolean; mark?: number };
 
 const colours = () =>
   dark.value
@@ -16,6 +16,7 @@ const colours = () =>
 export function Plot(props: Props) {
   const box = useRef<HTMLDivElement>(null);
   const plot = useRef<uPlot | undefined>(undefined);
+  const mark = useRef(props.mark);
   const shape = JSON.stringify([dark.value, units.value, props.unit, props.band, props.log, props.lines.map((l) => l.label)]);
   // At once: an effect that waits for a quiet moment leaves a busy page without lines.
   useLayoutEffect(() => {
@@ -33,7 +34,22 @@ export function Plot(props: Props) {
           { ...axis, space: 70, size: 26, gap: 3, values: (_, ts) => ts.map((t) => (props.over ? length(t) : new Date(t * 1000).toISOString().slice(11, 19))) },
           { ...axis, size: 50, gap: 3, space: 24, values: (_, vs) => labels(vs) },
         ],
-        series: [{}, ...props.lines.map((l) => ({ label: l.label, stroke: c[l.colour], width: l.colour === "quiet" ? 1 : 1.8, dash: l.dash, points: { show: false } }))],
+        series: [{}, ...props.lines.map((l) => ({ label: l.label, stroke: c[l.colour], width: l.colour === "quiet" ? 1 : 1.8, dash: l.dash, spanGaps: props.span, points: { show: false } }))],
+        hooks: {
+          draw: [
+            (u) => {
+              if (mark.current === undefined) return;
+              const x = Math.round(u.valToPos(mark.current, "x", true)) + 0.5;
+              u.ctx.strokeStyle = c.text;
+              u.ctx.lineWidth = 1;
+              u.ctx.setLineDash([]);
+              u.ctx.beginPath();
+              u.ctx.moveTo(x, u.bbox.top);
+              u.ctx.lineTo(x, u.bbox.top + u.bbox.height);
+              u.ctx.stroke();
+            },
+          ],
+        },
         bands: props.band ? [{ series: [3, 2], fill: c.band }] : [],
       },
       [props.times, ...props.lines.map((l) => l.values)],
@@ -52,6 +68,10 @@ export function Plot(props: Props) {
   useEffect(() => {
     plot.current?.setData([props.times, ...props.lines.map((l) => l.values)]);
   }, [props.times, shape]);
+  useEffect(() => {
+    mark.current = props.mark;
+    plot.current?.redraw(false);
+  }, [props.mark, shape]);
   return (
     <figure class="plot">
       <figcaption>

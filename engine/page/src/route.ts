@@ -7,6 +7,7 @@ export const views = [
   ["now", "Now"],
   ["chances", "Chances"],
   ["ahead", "Ahead"],
+  ["past", "Past runs"],
   ["alarms", "Alarms"],
   ["maps", "Maps and suites"],
 ] as const;

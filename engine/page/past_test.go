@@ -1,0 +1,117 @@
+package page_test
+
+import (
+	"fmt"
+	"os"
+	"path/filepath"
+	"strings"
+	"testing"
+	"time"
+
+	"leadline/engine/geo"
+	"leadline/engine/study/score"
+	"leadline/engine/study/track"
+	"leadline/engine/summary"
+)
+
+// tableOf writes a study's table of a run to the north at 1 m/s from a place, with a radius and an
+// error that are greatest at a time.
+func tableOf(t *testing.T, dir, name string, from geo.LonLat, worstS int) string {
+	t.Helper()
+	path := filepath.Join(dir, name)
+	f, err := os.Create(path)
+	if err != nil {
+		t.Fatal(err)
+	}
+	w, err := track.NewTable(f)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for i := range 300 {
+		off := 2.0
+		if i > worstS-15 && i < worstS+15 {
+			off = 40
+		}
+		at := geo.LonLat{Lon: from.Lon, Lat: from.Lat + float64(i)/6.37e6}
+		p := &summary.Posterior{TimeNS: time.Date(2026, 1, 1, 0, 0, i, 0, time.UTC).UnixNano(), Status: summary.Located, Mean: at, Radius50M: off, Radius95M: 2 * off, Radius99M: 3 * off}
+		if err := w.Add(track.Step{Posterior: p, Known: true, ErrorM: off, Truth: score.Truth{At: at}}); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if err := w.Close(); err != nil {
+		t.Fatal(err)
+	}
+	if err := f.Close(); err != nil {
+		t.Fatal(err)
+	}
+	return path
+}
+
+// TestPastRuns proves that the page finds the worst stretch of a study's tables
+// and shows two side by side at one time, that a drive which has ended is shown as
+// the server keeps it, and that what is no table is a sentence.
+func TestPastRuns(t *testing.T) {
+	b := startBrowser(t)
+	r := serve(t, "127.0.0.1:0")
+	w, _ := invented()
+	f := r.open(w.van, "van", nearStart(w.van))
+	r.send(f, upTo(w.van, 15))
+	closed, err := f.Close()
+	if err != nil {
+		t.Fatal(err)
+	}
+	dir := t.TempDir()
+	from := w.van.Truths[0].Position
+	calm, rough := tableOf(t, dir, "calm.csv", from, 200), tableOf(t, dir, "rough.csv", from, 100)
+	wrong := filepath.Join(dir, "wrong.csv")
+	if err := os.WriteFile(wrong, []byte("a,b\n1,2\n"), 0o600); err != nil {
+		t.Fatal(err)
+	}
+
+	p := b.open(t, r.origin+"/#past", 1440, 900, false)
+	load := func(paths ...string) {
+		t.Helper()
+		var doc struct{ Root struct{ NodeID int } }
+		var input struct{ NodeID int }
+		p.do("DOM.getDocument", nil, &doc)
+		p.do("DOM.querySelector", map[string]any{"nodeId": doc.Root.NodeID, "selector": "[name=table]"}, &input)
+		p.do("DOM.setFileInputFiles", map[string]any{"nodeId": input.NodeID, "files": paths}, nil)
+	}
+	p.await("the drive", "document.querySelectorAll('[name=first] option').length === 2")
+	load(wrong)
+	p.says("#past-trouble", "wrong.csv is no track.csv: there is no column time")
+	load(calm, rough)
+	p.says("#past-figures", "rough.csv")
+	worst := func(which string, second int) {
+		t.Helper()
+		p.click(fmt.Sprintf("[...document.querySelectorAll('button')].find(e => e.innerText === 'To the worst stretch of %s')", which))
+		p.says("#past-now", fmt.Sprintf("00:%02d:%02d UTC", second/60, second%60))
+	}
+	worst("the second", 99)
+	if got := strings.Join(strings.Fields(p.text("#past-figures")), " "); !strings.Contains(got, "95 % within 4 m 80 m") || !strings.Contains(got, "Error 2 m 40 m") {
+		t.Errorf("at its worst: %s", got)
+	}
+	p.await("the map", "document.querySelector('.legend')?.innerText.includes('truth')")
+	p.audit("past runs")
+	p.shoot("past-light")
+	worst("the first", 199)
+
+	// By keyboard: the drive in place of the first, and through its time.
+	p.tabTo("document.querySelector('[name=first]')")
+	p.press("ArrowUp")
+	p.says("#past-figures", "van")
+	p.tabTo("document.getElementById('past-time')")
+	p.press("End")
+	p.says("#past-now", "00:04:59 UTC")
+	p.tabTo("document.querySelector('[name=second]')")
+	p.press("Home")
+	p.await("the drive alone", "document.querySelectorAll('#past-figures thead th').length === 2")
+	p.press("Tab")
+	p.tabTo("document.getElementById('past-time')")
+	p.press("End")
+	p.says("#past-now", closed.GetPosterior().GetTime().AsTime().Format("15:04:05"))
+	p.resize(390, 844)
+	p.do("Emulation.setEmulatedMedia", map[string]any{"features": []map[string]string{{"name": "prefers-color-scheme", "value": "dark"}}}, nil)
+	p.shoot("past-narrow-dark")
+	p.clean(r.origin)
+}
