@@ -31,7 +31,7 @@ export function Plot(props: Props) {
         tzDate: (s) => uPlot.tzDate(new Date(s * 1000), "UTC"),
         scales: { x: { time: !props.over }, y: props.log ? { distr: 3 } : { range: (_, a, b) => spread(a, b) } },
         axes: [
-          { ...axis, space: 70, size: 26, gap: 3, values: (_, ts) => ts.map((t) => (props.over ? length(t) : new Date(t * 1000).toISOString().slice(11, 19))) },
+          { ...axis, space: 58, size: 26, gap: 3, values: (_, ts) => ts.map((t) => (props.over ? length(t) : new Date(t * 1000).toISOString().slice(11, 19))) },
           { ...axis, size: 50, gap: 3, space: 24, values: (_, vs) => labels(vs) },
         ],
         series: [{}, ...props.lines.map((l) => ({ label: l.label, stroke: c[l.colour], width: l.colour === "quiet" ? 1 : 1.8, dash: l.dash, spanGaps: props.span, points: { show: false } }))],
