@@ -19,7 +19,7 @@ const mostListed = 20
 // Report is what Check finds. Lengths of "road" count a road once, lengths of
 // "edges" each direction; lists hold at most twenty entries, the worst first.
 type Report struct {
-	Fingerprint string `json:"fingerprint"`
+	Fingerprint string `json:"fingerprint_sha256"`
 	Source      string `json:"source"`
 	Licence     string `json:"licence"`
 	Note        string `json:"note"`

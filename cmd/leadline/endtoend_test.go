@@ -151,9 +151,10 @@ func TestHeightsEndToEnd(t *testing.T) {
 		t.Errorf("map heights says %s", text)
 	}
 	var report struct {
-		LowestM  float64 `json:"lowest_m"`
-		HighestM float64 `json:"highest_m"`
-		Licence  string
+		LowestM     float64 `json:"lowest_m"`
+		HighestM    float64 `json:"highest_m"`
+		Licence     string
+		Fingerprint string `json:"fingerprint_sha256"`
 	}
 	picture := filepath.Join(dir, "relief.png")
 	readJSON(t, good(t, "map", "check", mapPath, "--json", "--png", picture), &report)
@@ -162,6 +163,15 @@ func TestHeightsEndToEnd(t *testing.T) {
 		t.Errorf("map check reports %+v", report)
 	}
 	needPNG(t, picture, 50)
+	var again struct {
+		Fingerprint string `json:"fingerprint_sha256"`
+		Columns     int
+		Notes       []string
+	}
+	readJSON(t, good(t, "map", "heights", grid, "-o", filepath.Join(dir, "again.heights.tif"), "--unit", "ft", "--crs", "EPSG:4326", "--sigma", "1", "--licence", "CC0", "--json"), &again)
+	if again.Fingerprint != report.Fingerprint || again.Columns != 400 || len(again.Notes) == 0 {
+		t.Errorf("map heights --json says %+v", again)
+	}
 
 	m, err := openMap(mapPath)
 	if err != nil {

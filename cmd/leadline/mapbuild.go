@@ -17,6 +17,7 @@ func mapRoadsCommand() *cobra.Command {
 	var o roadfile.Options
 	var out, heights string
 	var maxKM float64
+	var asJSON bool
 	c := &cobra.Command{
 		Use:   "roads IN -o TOWN" + roadfile.Suffix,
 		Short: "Compile a road map from GeoJSON or an OpenStreetMap extract",
@@ -61,8 +62,11 @@ func mapRoadsCommand() *cobra.Command {
 				return err
 			}
 			w := c.OutOrStdout()
-			fmt.Fprintln(w, notes)
 			_, strongM := m.Core()
+			if asJSON {
+				return printJSON(w, compiledRoads{compiled{out, m.Fingerprint(), time.Since(began).Seconds()}, m.Charts(), strongM, notes})
+			}
+			fmt.Fprintln(w, notes)
 			fmt.Fprintf(w, "%s: %d directed edges; the largest strongly connected part has %.1f km of them; %.1f s\n",
 				out, m.Charts(), strongM/1000, time.Since(began).Seconds())
 			fmt.Fprintf(w, "next: %s map check %s --png %s\n", programName(), shellWord(out), shellWord(mapName(out)+".png"))
@@ -84,12 +88,37 @@ func mapRoadsCommand() *cobra.Command {
 	f.Float64Var(&maxKM, "max-km", 2e5, "refuse maps with more kilometres of directed edges")
 	f.StringVar(&o.Map.Source, "source", "", "where the roads come from (default: the name of the file)")
 	f.StringVar(&o.Map.Licence, "licence", "", "licence of the roads (default: what the file says)")
+	f.BoolVar(&asJSON, "json", false, "print what was read and made as JSON")
 	return c
+}
+
+// compiled is what is said of a map that was compiled.
+type compiled struct {
+	Map         string  `json:"map"` // the file
+	Fingerprint string  `json:"fingerprint_sha256"`
+	Seconds     float64 `json:"seconds"`
+}
+
+type compiledRoads struct {
+	compiled
+	DirectedEdges      int     `json:"directed_edges"`
+	StronglyConnectedM float64 `json:"strongly_connected_m"` // of the largest part
+	roadfile.Notes
+}
+
+type compiledHeights struct {
+	compiled
+	Format        string   `json:"format"`
+	Columns       int      `json:"columns"`
+	Rows          int      `json:"rows"`
+	VerticalDatum string   `json:"vertical_datum"`
+	Notes         []string `json:"notes"`
 }
 
 func mapHeightsCommand() *cobra.Command {
 	var o heightfile.Options
 	var out, crs, unit, vertical string
+	var asJSON bool
 	c := &cobra.Command{
 		Use:   "heights IN -o RELIEF" + heightfile.Suffix,
 		Short: "Compile a height map from ESRI ASCII, SRTM .hgt, GeoTIFF or netCDF classic",
@@ -117,13 +146,13 @@ func mapHeightsCommand() *cobra.Command {
 				return err
 			}
 			w := c.OutOrStdout()
-			g := res.Raster.Grid()
-			for _, warning := range res.Warnings {
-				fmt.Fprintln(w, "note:", warning)
+			g, datum := res.Raster.Grid(), res.Raster.Meta().VerticalDatum
+			notes := append([]string{}, res.Warnings...)
+			if asJSON {
+				return printJSON(w, compiledHeights{compiled{out, res.Raster.Fingerprint(), time.Since(began).Seconds()}, res.Format, g.Cols, g.Rows, datum, notes})
 			}
-			meta := res.Raster.Meta()
-			if meta.VerticalDatum == terrain.Unstated {
-				fmt.Fprintln(w, "note: the vertical datum is UNSTATED: give it with --datum if you know it")
+			for _, note := range notes {
+				fmt.Fprintln(w, "note:", note)
 			}
 			fmt.Fprintf(w, "%s: %s, %d × %d samples; %.1f s\n", out, res.Format, g.Cols, g.Rows, time.Since(began).Seconds())
 			fmt.Fprintf(w, "next: %s map check %s --png %s\n", programName(), shellWord(out), shellWord(mapName(out)+".png"))
@@ -143,6 +172,7 @@ func mapHeightsCommand() *cobra.Command {
 	f.IntVar(&o.MaxSamples, "max-samples", terrain.MaxSamples, "refuse larger rasters")
 	f.StringVar(&o.Source, "source", "", "where the heights come from")
 	f.StringVar(&o.Licence, "licence", "", "licence of the heights")
+	f.BoolVar(&asJSON, "json", false, "print what was read and made as JSON")
 	return c
 }
 

@@ -97,22 +97,23 @@ func printMap(w io.Writer, m *leadlinev1.MapDescription) {
 func mapSendCommand() *cobra.Command {
 	var to reach
 	var name string
-	var replace bool
+	var replace, asJSON bool
 	c := &cobra.Command{
 		Use:   "send MAP --at ADDR",
 		Short: "Upload a compiled map to a server that takes maps",
 		Long: `Send uploads a compiled map to a server that was started with --uploads. New
 drives can use it at once; those that are open keep the one they have.`,
 		Args: cobra.ExactArgs(1),
-		RunE: func(c *cobra.Command, args []string) error { return sendMap(c, &to, args[0], name, replace) },
+		RunE: func(c *cobra.Command, args []string) error { return sendMap(c, &to, args[0], name, replace, asJSON) },
 	}
 	to.flags(c, "at")
 	c.Flags().StringVar(&name, "name", "", "name of the map at the server (default: the file's)")
 	c.Flags().BoolVar(&replace, "replace", false, "take the place of the map that has the name")
+	c.Flags().BoolVar(&asJSON, "json", false, "print the map, as the server now has it, as JSON")
 	return c
 }
 
-func sendMap(c *cobra.Command, to *reach, path, name string, replace bool) error {
+func sendMap(c *cobra.Command, to *reach, path, name string, replace, asJSON bool) error {
 	m, err := openMap(path) // what is damaged need not be sent
 	if err != nil {
 		return err
@@ -150,6 +151,9 @@ func sendMap(c *cobra.Command, to *reach, path, name string, replace bool) error
 	end()
 	if err != nil {
 		return fmt.Errorf("%s: %w", path, serverError(err, to.address))
+	}
+	if asJSON {
+		return printMessage(c.OutOrStdout(), sent)
 	}
 	fmt.Fprintf(c.OutOrStdout(), "%s is %s\n", b.Name, done)
 	printMap(c.OutOrStdout(), sent)

@@ -74,7 +74,11 @@ func TestMapsEndToEnd(t *testing.T) {
 			if err := feed.Flush(); err != nil {
 				t.Fatal(err)
 			}
-			good(t, "map", "send", other, "--name", "town", "--replace", "--at", srv.address)
+			var sent struct{ Name, Fingerprint string }
+			readJSON(t, good(t, "map", "send", other, "--name", "town", "--replace", "--at", srv.address, "--json"), &sent)
+			if sent.Name != "town" || sent.Fingerprint == "" {
+				t.Errorf("map send --json says %+v", sent)
+			}
 			if text := good(t, "map", "list", "--at", srv.address); !strings.Contains(text, "1 on an older one") {
 				t.Errorf("map list says %s", text)
 			}

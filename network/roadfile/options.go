@@ -87,38 +87,39 @@ func (o *Options) takes(class string) bool {
 
 // Notes say what reading did to the roads of a file.
 type Notes struct {
-	Format   string // "GeoJSON", "OpenStreetMap XML", "OpenStreetMap PBF"
-	Features int    // lines, areas and points in the file
-	Lines    int    // of them taken as roads
-	Vertices int    // of those lines
+	Format   string `json:"format"`   // "GeoJSON", "OpenStreetMap XML", "OpenStreetMap PBF"
+	Features int    `json:"features"` // lines, areas and points in the file
+	Lines    int    `json:"lines"`    // of them taken as roads
+	Vertices int    `json:"vertices"` // of those lines
 
-	Tunnels int // lines in tunnels
-	Bridges int // lines on bridges
+	Tunnels int `json:"tunnels"` // lines in tunnels
+	Bridges int `json:"bridges"` // lines on bridges
 
-	OtherClass    int // lines left out for their highway tag
-	Private       int // for their access tag
-	Areas         int // polygons, and lines with area=yes
-	Points        int
-	NoGeometry    int // features whose geometry is null or empty
-	MissingNodes  int // nodes of ways that the extract does not hold
-	JoinedEnds    int // ends joined because they came near
-	Crossings     int // junctions made by SplitCrossings
-	Repeated      int // roads left out because another one has the same points
-	NoLength      int // lines or roads of no length, left out
-	Bans          int // forbidden turns
-	UnusedBans    int // turn restrictions via a way, or that name no road read
-	ThroughJoints int // places where two lines of the same road became one
+	OtherClass    int `json:"other_class"` // lines left out for their highway tag
+	Private       int `json:"private"`     // for their access tag
+	Areas         int `json:"areas"`       // polygons, and lines with area=yes
+	Points        int `json:"points"`
+	NoGeometry    int `json:"no_geometry"`    // features whose geometry is null or empty
+	MissingNodes  int `json:"missing_nodes"`  // nodes of ways that the extract does not hold
+	JoinedEnds    int `json:"joined_ends"`    // ends joined because they came near
+	Crossings     int `json:"crossings"`      // junctions made by SplitCrossings
+	Repeated      int `json:"repeated"`       // roads left out because another one has the same points
+	NoLength      int `json:"no_length"`      // lines or roads of no length, left out
+	Bans          int `json:"bans"`           // forbidden turns
+	UnusedBans    int `json:"unused_bans"`    // turn restrictions via a way, or that name no road read
+	ThroughJoints int `json:"through_joints"` // places where two lines of the same road became one
 
 	// Unknown are values of tags that mean nothing here, in the order in which
 	// they came, at most maxUnknown different ones. The tag counts as left out.
-	Unknown []UnknownValue
+	Unknown []UnknownValue `json:"unknown"`
 }
 
 // UnknownValue is a value of a tag that means nothing here.
 type UnknownValue struct {
-	Tag, Value string
-	Count      int
-	First      string // the feature that had it first
+	Tag   string `json:"tag"`
+	Value string `json:"value"`
+	Count int    `json:"count"`
+	First string `json:"first"` // the feature that had it first
 }
 
 // maxUnknown bounds the list of unknown values.

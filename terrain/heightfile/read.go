@@ -185,7 +185,7 @@ func (f *raw) finish(opt Options) (*terrain.Raster, error) {
 // metaWarnings says out loud what is unstated.
 func metaWarnings(m terrain.Meta) (w []string) {
 	if m.VerticalDatum == terrain.Unstated {
-		w = append(w, "the vertical datum is unstated: heights of another datum may differ by tens of metres")
+		w = append(w, "the vertical datum is unstated, and heights of another datum may differ by tens of metres: give it if you know it")
 	}
 	if m.SigmaM == 0 {
 		w = append(w, "the vertical error is unstated: measurements will be weighed as if the map were exact; give its sigma or LE90")
