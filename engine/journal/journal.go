@@ -84,7 +84,10 @@ func Open(ctx context.Context, o Options, take func(Record) error) (*Journal, *F
 		return fail(err)
 	}
 	j.broker.Store(b)
-	st, info, err := b.stream(ctx, &o)
+	// A broker that has just started may be reading its files still.
+	starting, started := context.WithTimeout(ctx, startTimeout)
+	defer started()
+	st, info, err := b.stream(starting, &o)
 	if err != nil {
 		return fail(err)
 	}

@@ -125,7 +125,7 @@ func (s *Server) eraseRecords(ctx context.Context, vehicle string, marker *journ
 			if json.Unmarshal(r.Data, &opened) != nil {
 				return false // it is damaged, and named when the journal is opened
 			}
-		case kindCheckpoint:
+		case kindCheckpoint, kindWholeCheck:
 			check, _, err := checkpointOf(r.Data)
 			if err != nil {
 				return false

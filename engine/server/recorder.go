@@ -26,9 +26,10 @@ const (
 	kindBatch       = 2 // a Batch, as it came
 	kindMeasurement = 3 // a SensorMeasurement beside the batches
 	kindEnd         = 4 // the drive ends
-	kindCheckpoint  = 5 // checkpointRecord and the session
+	kindWholeCheck  = 5 // checkpointRecord and the session, as earlier versions wrote it
 	kindDropped     = 6 // the drive is given up
 	kindErase       = 7 // in a line of its own: all of a vehicle is to go, whose name it is
+	kindCheckpoint  = 8 // checkpointRecord and the session, compressed
 )
 
 // openedRecord is what a drive begins with, in JSON.

@@ -28,6 +28,7 @@ type history struct {
 	records []journal.Record // to be taken, after the checkpoint if there is one
 	check   *checkpointRecord
 	state   []byte // of the checkpoint: the session
+	packed  bool   // it is compressed
 	whole   bool   // from the drive's beginning on
 	first   uint64 // number of the first record that was there
 	last    uint64
@@ -70,7 +71,7 @@ func (c *histories) take(r journal.Record) error {
 		h.whole = true
 	case kindDropped:
 		h.dropped, h.records, h.state = true, nil, nil
-	case kindCheckpoint:
+	case kindCheckpoint, kindWholeCheck:
 		return c.checkpoint(h, r)
 	case kindBatch, kindMeasurement, kindEnd:
 		r.Data = slices.Clone(r.Data)

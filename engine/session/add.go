@@ -264,7 +264,7 @@ func (s *Session) Flush() []*summary.Posterior {
 	if s.state.begun {
 		s.flushed, s.flushedAt = true, s.state.time
 		clear(s.snaps)
-		s.snaps = append(s.snaps[:0], snapshot{s.state.time, s.state.clone()})
+		s.snaps = append(s.snaps[:0], snapshot{time: s.state.time, state: s.state.clone()})
 		s.log.drop(s.state.time, false, s.keepPast)
 	}
 	return out

@@ -131,9 +131,18 @@ func (s *Session) code(c *exact.Coder, found *[]recipe) {
 	}
 	c.Value(found)
 	s.state.code(c, searches)
-	exact.Slice(c, &s.snaps, 32, func(n *snapshot) {
+	snaps := s.snaps
+	if !c.Reading() {
+		snaps = s.written()
+	}
+	exact.Slice(c, &snaps, 8, func(n *snapshot) {
 		c.Value(&n.time)
-		n.state.code(c, searches)
+		c.Bool(&n.hollow)
+		if n.hollow {
+			c.Uint(&n.processed)
+		} else {
+			n.state.code(c, searches)
+		}
 	})
 	s.log.code(c)
 	c.Value(&s.past)
@@ -154,11 +163,26 @@ func (s *Session) code(c *exact.Coder, found *[]recipe) {
 	c.Value(&s.flushedAt)
 	c.Value(&s.widest)
 	if c.Reading() {
-		s.recent, s.final = recent, final
+		s.snaps, s.recent, s.final = snaps, recent, final
 	}
 }
 
-// searches are those on their way, of the session and of its snapshots.
+// written are the snapshots as a checkpoint has them: all but the first hollow,
+// which make most of a session's bytes. Where so many events are held that relieve
+// may soon have to give some up, all stay.
+func (s *Session) written() []snapshot {
+	snaps := slices.Clone(s.snaps)
+	if len(s.log.events) > s.maxWaiting/4 {
+		return snaps
+	}
+	for i := 1; i < len(snaps); i++ {
+		snaps[i] = snapshot{time: snaps[i].time, state: state{processed: snaps[i].processed}, hollow: true}
+	}
+	return snaps
+}
+
+// searches are those on their way, of the session and of the snapshots that are
+// written.
 func (s *Session) searches() (out []*search) {
 	add := func(x *search) {
 		if x != nil && !slices.Contains(out, x) {
@@ -166,8 +190,8 @@ func (s *Session) searches() (out []*search) {
 		}
 	}
 	add(s.state.aside.search)
-	for i := range s.snaps {
-		add(s.snaps[i].aside.search)
+	for _, n := range s.written() {
+		add(n.aside.search)
 	}
 	return out
 }

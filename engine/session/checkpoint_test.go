@@ -61,9 +61,10 @@ func swapped(events []sensor.Event) []sensor.Event {
 	return late
 }
 
-// TestCheckpoint proves that a session which is written and restored after every
-// event, and after its end, is the one that was not: late events, a plane with
-// and without quantities, and a search of the whole map on its way included.
+// TestCheckpoint proves that a session which is written and restored again and
+// again, some events in a row, and after its end, is the one that was not: late
+// events, a plane with and without quantities, and a search of the whole map on its
+// way included. In between it gets whole snapshots again.
 func TestCheckpoint(t *testing.T) {
 	town, road := crossing(), straight(1000)
 	for _, c := range []struct {
@@ -90,7 +91,9 @@ func TestCheckpoint(t *testing.T) {
 				if s.state.aside.search != nil {
 					searching++
 				}
-				s = again(t, c.config, s, i%10 == 0)
+				if i%60 < 8 || c.name == "search" {
+					s = again(t, c.config, s, i%5 == 0)
+				}
 			}
 			last := s.Flush()
 			o.s = s
@@ -133,7 +136,7 @@ func TestFieldsOfCheckpoints(t *testing.T) {
 		{Session{}, 51},
 		{state{}, 20},
 		{aside{}, 10},
-		{snapshot{}, 2},
+		{snapshot{}, 3},
 		{log{}, 7},
 		{source{}, 3},
 		{spoken{}, 2},

@@ -82,10 +82,14 @@ func (s *Session) snapshot() {
 	n := len(s.snaps)
 	if n == 0 || now.Seconds(s.snaps[n-1].time) >= window/2 ||
 		s.state.processed-s.snaps[n-1].processed >= uint64(s.maxWaiting/4) {
-		s.snaps = append(s.snaps, snapshot{now, s.state.clone()})
+		s.snaps = append(s.snaps, snapshot{time: now, state: s.state.clone()})
 	}
 	for len(s.snaps) > 1 && now.Seconds(s.snaps[1].time) > window {
-		s.snaps = slices.Delete(s.snaps, 0, 1)
+		i := 0
+		if s.snaps[1].hollow {
+			i = 1 // the first is still needed
+		}
+		s.snaps = slices.Delete(s.snaps, i, i+1)
 	}
 	s.log.drop(s.snaps[0].time, false, s.keepPast)
 }
@@ -93,7 +97,7 @@ func (s *Session) snapshot() {
 // rewind restores the last snapshot before a time.
 func (s *Session) rewind(from sensor.Time) {
 	n := len(s.snaps)
-	for !s.snaps[n-1].precedes(from) {
+	for s.snaps[n-1].hollow || !s.snaps[n-1].precedes(from) {
 		n--
 	}
 	snap := &s.snaps[n-1]
@@ -119,15 +123,19 @@ func (s *Session) rewind(from sensor.Time) {
 func (s *Session) relieve() []*summary.Posterior {
 	var out []*summary.Posterior
 	for len(s.log.events) >= s.maxWaiting {
+		later := 1
+		for later < len(s.snaps) && s.snaps[later].hollow {
+			later++
+		}
 		switch {
-		case len(s.snaps) > 1:
-			s.snaps = slices.Delete(s.snaps, 0, 1)
+		case later < len(s.snaps):
+			s.snaps = slices.Delete(s.snaps, 0, later)
 		case len(s.log.events)-s.log.next > s.maxWaiting/2:
 			s.pressed = true
 			out = append(out, s.run(false)...)
 			s.pressed = false
 		default:
-			s.snaps = append(s.snaps[:0], snapshot{s.state.time, s.state.clone()})
+			s.snaps = append(s.snaps[:0], snapshot{time: s.state.time, state: s.state.clone()})
 		}
 		s.log.drop(s.snaps[0].time, true, s.keepPast)
 	}

@@ -15,7 +15,11 @@ import (
 func (s *Session) sound(beside []filter.Quantity, searches int) error {
 	states := []*state{&s.state}
 	for i := range s.snaps {
-		states = append(states, &s.snaps[i].state)
+		if !s.snaps[i].hollow {
+			states = append(states, &s.snaps[i].state)
+		} else if i == 0 {
+			return errors.New("its first snapshot has no state")
+		}
 	}
 	for _, st := range states {
 		if err := s.soundBelief(st.belief); err != nil {

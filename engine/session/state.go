@@ -92,6 +92,10 @@ func (st *state) record(e summary.Evidence) {
 type snapshot struct {
 	time sensor.Time
 	state
+	// hollow is that of the state only the number of processed events is there: a
+	// checkpoint leaves out what can be computed again from an earlier one. It
+	// keeps the later ones at the times that they would have had.
+	hollow bool
 }
 
 // precedes reports whether what happens from a time on can be computed again
