@@ -15,7 +15,7 @@ FUZZ_TIME ?= 60s
 # the code. A tree may be named before it exists.
 RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/livelog/... ./engine/study/sweep ./engine/study/forecast ./engine/study/tune ./engine/journal/... ./cmd/...
 
-.PHONY: build test race fuzz credibility survive bench bench-short benchmarks fetch fetch-arrow fetch-clients fetch-page page page-check generate generate-check vectors \
+.PHONY: build test race fuzz credibility credibility-reach survive bench bench-short benchmarks fetch fetch-arrow fetch-clients fetch-page page page-check generate generate-check vectors \
 	generate-clients generate-clients-check format format-check vet lint lint-only vuln licences licences-check clean
 
 # build makes one static binary.
@@ -42,6 +42,11 @@ fuzz:
 # writes build/credibility.json; a run that was stopped goes on.
 credibility:
 	$(GO) run ./fixtures/credibility/run
+
+# credibility-reach draws the table about velocity grids and traffic, likewise, and
+# writes build/credibility-reach.json.
+credibility-reach:
+	$(GO) run ./fixtures/credibility/run -table reach
 
 # survive kills servers, damages their files, fills their disk and sets back their
 # clock, and writes build/survive.json: at most a quarter of an hour a row.

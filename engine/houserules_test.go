@@ -39,7 +39,7 @@ var mayImport = map[string][]string{
 	"engine/monitor":           {"engine/exact"},
 	"engine/summary":           {"engine/exact", "engine/filter", "engine/monitor", "engine/geo"},
 	"engine/session":           {"engine/exact", "engine/filter", "engine/monitor", "engine/sensor", "engine/summary", "engine/geo"},
-	"engine/traffic":           {"engine/filter", "engine/sensor", "engine/geo"},
+	"engine/traffic":           {"engine/sensor", "engine/geo"},
 	"engine/wire":              {api, "engine/sensor", "engine/geo"},
 	"engine/drivefile":         {api, "engine/wire", "engine/sensor", "engine/geo"},
 	"engine/journal":           {},
@@ -77,7 +77,7 @@ var mayImport = map[string][]string{
 	"fixtures/outside/fetch": {"fixtures/outside"},
 	"fixtures/credibility": {
 		"engine/filter", "engine/filter/filtertest", "engine/geo", "engine/plane", "engine/sensor", "engine/session", "engine/summary",
-		"engine/study/score", "network", "network/roadfile", "terrain", "terrain/heightfile", "fixtures/accept", "fixtures/drives", "fixtures/outside", "fixtures/reference", "fixtures/roads", "fixtures/sim",
+		"engine/traffic", "engine/study/score", "network", "network/roadfile", "terrain", "terrain/heightfile", "fixtures/accept", "fixtures/drives", "fixtures/outside", "fixtures/reference", "fixtures/roads", "fixtures/sim",
 	},
 	"fixtures/credibility/run": {"fixtures/credibility"},
 	"fixtures/bench":           {"engine/filter", "engine/geo", "engine/plane", "engine/sensor", "terrain"},
