@@ -7,6 +7,7 @@ import (
 	"math"
 	"strings"
 
+	"leadline/engine/study/score"
 	"leadline/engine/study/sweep"
 )
 
@@ -82,6 +83,9 @@ func printScore(w io.Writer, run *sweep.Outcome) error {
 		line("fixes", "held out: rms %.2f m, 50 %% %.2f m, 95 %% %.2f m over %d, their own error (%.2f m an axis) in it; %.1f %% outside of what 95 %% should be in",
 			*h.RMSEM, *h.P50M, *h.P95M, h.Fixes, *h.SigmaM, 100**h.Outside)
 	}
+	if l := s.LookedBack; l != nil {
+		printLookedBack(line, l)
+	}
 	for _, i := range s.Sensors {
 		if i.Whiteness != nil && (*i.Whiteness < 1e-3 || math.Abs(i.Mean) > 0.5 || i.SD > 1.5) {
 			line("innovations", "of %s (%s): mean %+.2f, sd %.2f (0 and 1 are right), whiteness p %.2g over %d", i.Sensor, i.Kind, i.Mean, i.SD, *i.Whiteness, i.Scores)
@@ -96,6 +100,23 @@ func printScore(w io.Writer, run *sweep.Outcome) error {
 	line("sha256", "%s", s.PosteriorSHA256)
 	_, err := io.WriteString(w, b.String())
 	return err
+}
+
+// printLookedBack prints what looking back gave.
+func printLookedBack(line func(label, format string, args ...any), l *score.LookedBack) {
+	for _, x := range []struct {
+		name string
+		f    *score.Hindsight
+	}{{"smoothed", l.Smoothed}, {"path", l.Path}} {
+		if x.f != nil && x.f.Figures.RMSEM != nil {
+			f := x.f.Figures
+			line(x.name, "rms %.2f m, 50 %% %.2f m, 95 %% %.2f m, greatest %.2f m over the same times; rms %.2f m over the whole drive", *f.RMSEM, *f.P50M, *f.P95M, *f.MaxM, *x.f.FiguresAll.RMSEM)
+		}
+	}
+	if a := l.Agreement; a.MeanSquare != nil {
+		line("looked back", "the mean moved by %.2f m rms; squared, in terms of what was expected, %.2f in the mean (2 is exact), %.1f %% where 99 %% should be",
+			a.RMSM, *a.MeanSquare, 100**a.Within99)
+	}
 }
 
 // printSweep prints what the runs of a sweep come to.

@@ -31,6 +31,7 @@ type replayOptions struct {
 	truthOffset   []float64
 	estimateTruth bool
 	holdOutFixes  bool
+	smooth, path  bool
 	also          []string
 	beliefAt      []string
 }
@@ -65,6 +66,8 @@ what is done; the same command goes on from there.`,
 	f.Float64SliceVar(&o.truthOffset, "truth-offset", nil, "where and when the truth is measured: FORWARD,RIGHT,LATE in metres from the vehicle's reference point and seconds")
 	f.BoolVar(&o.estimateTruth, "estimate-truth-offset", false, "say in the score what that might be; it is not taken off")
 	f.BoolVar(&o.holdOutFixes, "hold-out-fixes", false, "compare each satellite fix with what was known just before it")
+	f.BoolVar(&o.smooth, "smooth", false, "look back over each drive: what is known of each time given all of it, in smoothed.csv and smoothed.geojson")
+	f.BoolVar(&o.path, "path", false, "look back for the most probable path, in path.csv and path.geojson")
 	f.StringSliceVar(&o.also, "also", nil, "write tracks in these forms, too: gpx, parquet")
 	f.StringArrayVar(&o.beliefAt, "belief-at", nil, "write the whole belief at this time, RFC 3339 or seconds after the first measurement, for a GIS; repeat")
 	settable(c, "max-cells")
@@ -143,7 +146,7 @@ func (o *replayOptions) job(maps map[string]*mapFile, paths []string) (*sweep.Jo
 	job := &sweep.Job{
 		HoldOut: o.holdOut, MaxCells: o.maxCells, Dir: o.dir, Parallel: o.parallel,
 		Again:         o.again || o.explain != "" || o.diagnose == diagnoseAlways,
-		EstimateTruth: o.estimateTruth, HoldOutFixes: o.holdOutFixes,
+		EstimateTruth: o.estimateTruth, HoldOutFixes: o.holdOutFixes, Smooth: o.smooth, Path: o.path,
 		Version: versionText(), Program: programSHA256(), Command: append([]string{"leadline"}, os.Args[1:]...),
 	}
 	if err := o.outputs(job); err != nil {

@@ -81,7 +81,7 @@ const (
 // keeping mass and mean. Gaussians keep the variance as well; what a change of
 // spacing adds to that of a lattice is kept as the tiles' surplus and taken
 // back from the next spread. It does nothing to beliefs on lines. It reports
-// whether anything changed. A trace does not follow it.
+// whether anything changed.
 func Adapt(b *Belief, maxCells int, w *Workspace) bool {
 	if b.Dim == 2 && len(b.Quantities) > 0 && len(b.Key) > 0 {
 		return b.adaptGaussians(maxCells, w)
@@ -93,10 +93,14 @@ func Adapt(b *Belief, maxCells int, w *Workspace) bool {
 	h := b.Lattice.SpacingM
 	switch {
 	case h > fineScale*scale && 4*b.occupiedCells() <= maxCells:
+		u := w.turn(b, refined)
 		b.refine(&w.tiles)
+		w.endTiles(u, b)
 		return true
 	case 2*h < coarseScale*scale && b.Tight == 0 || b.occupiedCells() > maxCells:
+		u := w.turn(b, coarsened)
 		b.coarsen(&w.tiles)
+		w.endTiles(u, b)
 		return true
 	}
 	return false

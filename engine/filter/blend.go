@@ -7,6 +7,9 @@ func Blend(b, other *Belief, share float64, space LineSpace, w *Workspace) {
 		panic("filter: a blend of beliefs over different cells")
 	}
 	k := len(b.Quantities)
+	u := w.turn(b, regrouped)
+	mv := mover{dim: 1}
+	mv.follow(u)
 	w.out.reset()
 	var g gaussian
 	add := func(from *Gaussians, part float64) {
@@ -14,12 +17,19 @@ func Blend(b, other *Belief, share float64, space LineSpace, w *Workspace) {
 			from.load(&g, i, k)
 			g.mass *= part
 			w.out.push(key, k, &g)
+			mv.index, mv.from[0] = -1, g.mean[0]
+			if from == &b.Gaussians {
+				mv.index = int32(i)
+			}
+			mv.note(&g)
 		}
 	}
 	add(&b.Gaussians, 1-share)
 	add(&other.Gaussians, share)
 	b.Pruned += share * other.Pruned
 	b.LeftMap += share * other.LeftMap
-	w.merger.merge(&b.Gaussians, &w.out, k, angularMask(b.Quantities), perCell(1), nil)
-	b.thin(nil)
+	into := w.intoFor(u, len(w.out.Key))
+	w.merger.merge(&b.Gaussians, &w.out, k, angularMask(b.Quantities), perCell(1), into)
+	w.end(u, b, &w.out, into, mv.source, mv.offset)
+	b.thin(w)
 }

@@ -166,13 +166,18 @@ func (b *Belief) inject(space LineSpace, from *Gaussians, places []Nearest, keep
 	lines := space.Lines(b.Level)
 	mv := w.newMover(b, Step{})
 	mv.lines = lines
+	u := w.turn(b, regrouped)
+	mv.follow(u)
 	w.out.reset()
 	var g gaussian
 	for i := range b.Mass {
 		b.load(&g, i, k)
 		g.mass *= keep
 		w.out.push(b.Key[i], k, &g)
+		mv.index, mv.from[0] = int32(i), g.mean[0]
+		mv.note(&g)
 	}
+	mv.index = -1
 	for i, key := range from.Key {
 		from.load(&g, i, k)
 		g.mass *= scale
@@ -184,7 +189,9 @@ func (b *Belief) inject(space LineSpace, from *Gaussians, places []Nearest, keep
 	}
 	b.Pruned += mv.pruned
 	b.LeftMap += mv.left
-	w.merger.merge(&b.Gaussians, &w.out, k, mv.angular, perCell(1), nil)
+	into := w.intoFor(u, len(w.out.Key))
+	w.merger.merge(&b.Gaussians, &w.out, k, mv.angular, perCell(1), into)
+	w.end(u, b, &w.out, into, mv.source, mv.offset)
 	total := 0.0
 	for _, m := range b.Mass {
 		total += m
@@ -195,5 +202,5 @@ func (b *Belief) inject(space LineSpace, from *Gaussians, places []Nearest, keep
 	for i := range w.departed.Mass { // relative to the belief, see Departed
 		w.departed.Mass[i] /= total
 	}
-	b.thin(nil)
+	b.thin(w)
 }

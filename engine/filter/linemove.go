@@ -13,6 +13,7 @@ func (mv *mover) line(chart, cell int32, g *gaussian) {
 	pos := float64((float64(cell)+0.5)*h) + g.mean[0]
 	sigma := math.Sqrt(g.cov[0])
 	if sigma <= 0.5*h {
+		mv.from[0] = g.mean[0]
 		mv.place(chart, pos, g, g.mass, 0)
 		return
 	}
@@ -30,6 +31,7 @@ func (mv *mover) line(chart, cell int32, g *gaussian) {
 			whole.piece(&mv.piece, mv.k, c)
 			// A folded tail may have its mean beyond its cell: it is at home
 			// where its mean is.
+			mv.from[0] = mv.piece.mean[0]
 			mv.place(chart, pos+float64(sigma*c.mean), &mv.piece, mv.piece.mass, 0)
 		}
 		left = right
@@ -53,6 +55,7 @@ func (mv *mover) place(chart int32, pos float64, g *gaussian, mass float64, dept
 		g.mass = mass
 		g.mean[0] = pos - float64((float64(cell)+0.5)*ln.WidthM[chart])
 		mv.out.push(LineKey(chart, cell), mv.k, g)
+		mv.note(g)
 		return
 	}
 	links, beyond := &ln.Forward, pos-length

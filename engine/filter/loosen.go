@@ -147,6 +147,7 @@ func (b *Belief) Departed(dst *Loose, space LineSpace, lateralM2 float64, most i
 // since a belief is never empty: its share of the whole is then next to nothing.
 func (b *Belief) stayAtEnds(lines *Lines, w *Workspace) {
 	k := len(b.Quantities)
+	u := w.turn(b, given)
 	w.out.reset()
 	var g gaussian
 	for i, key := range w.departed.Key {
@@ -168,4 +169,5 @@ func (b *Belief) stayAtEnds(lines *Lines, w *Workspace) {
 	for i := range b.Mass {
 		b.Mass[i] /= total
 	}
+	u.gave(b)
 }

@@ -74,13 +74,15 @@ func correlated(q []float64, k, d int) bool {
 // wide, and unless it is faint into columns and rows.
 func (mv *mover) plane(from Lattice, key uint64, g *gaussian, faint bool) {
 	col, row := Cell(key)
+	mv.moved = [2]float64{}
 	if from != mv.lattice {
 		h := mv.lattice.SpacingM
 		at := from.Centre(col, row).Sub(mv.lattice.Origin)
 		e, n := math.Floor(at.E/h+0.5), math.Floor(at.N/h+0.5)
 		col, row = int32(e), int32(n)
-		g.mean[0] += at.E - float64(e*h)
-		g.mean[1] += at.N - float64(n*h)
+		mv.moved = [2]float64{at.E - float64(e*h), at.N - float64(n*h)}
+		g.mean[0] += mv.moved[0]
+		g.mean[1] += mv.moved[1]
 	}
 	use := func(g *gaussian) { mv.squares(col, row, g) }
 	if faint {
@@ -126,9 +128,11 @@ func (mv *mover) home(col, row int32, g *gaussian) {
 	}
 	h := mv.lattice.SpacingM
 	e, n := math.Floor(g.mean[0]/h+0.5), math.Floor(g.mean[1]/h+0.5)
+	mv.from = [2]float64{g.mean[0] - mv.moved[0], g.mean[1] - mv.moved[1]}
 	g.mean[0] -= float64(e * h)
 	g.mean[1] -= float64(n * h)
 	mv.out.push(CellKey(col+int32(e), row+int32(n)), mv.k, g)
+	mv.note(g)
 }
 
 // A Gaussian wider than cutWidth of a cell is cut into a row of narrower ones, a

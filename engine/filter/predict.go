@@ -17,9 +17,8 @@ type Workspace struct {
 	out    Gaussians
 	merger merger
 	mover  mover
-	trace  *Trace
-	source []int32 // of what is traced
-	into   []int32
+	tape   *Tape   // nil: nothing is recorded
+	into   []int32 // of what is recorded
 	// What has gone over ends, where that is kept (Depart).
 	departs  bool
 	departed Gaussians
@@ -40,21 +39,6 @@ type Workspace struct {
 	foretell    *Predictive
 	predictions predictions
 }
-
-// Trace is what one Predict did: mass Weight·(mass of Source) went into
-// Target. A source's weights sum to 1 less what was pruned or left the map.
-type Trace struct {
-	Source, Target []int32
-	Weight         []float64
-	// Predicted is the number of targets; Kept are the targets that the
-	// updates since then have left, in the order of the belief.
-	Predicted int
-	Kept      []int32
-}
-
-// Record makes the next calls of Predict with this workspace fill t (nil
-// stops it). Only beliefs of Gaussians are traced.
-func (w *Workspace) Record(t *Trace) { w.trace = t }
 
 // Predict moves a belief in place by one step.
 //
@@ -89,7 +73,7 @@ func Predict(b *Belief, space Space, step Step, w *Workspace) {
 		b.predictTiles(step, w)
 		return
 	}
-	if b.Dim == 1 || w.trace != nil {
+	if b.Dim == 1 {
 		b.move(space, step, w)
 		return
 	}
@@ -107,6 +91,7 @@ func Predict(b *Belief, space Space, step Step, w *Workspace) {
 func (b *Belief) move(space Space, step Step, w *Workspace) {
 	k := len(b.Quantities)
 	mv := w.newMover(b, step)
+	u := w.turn(b, moved)
 	if b.Dim == 1 {
 		mv.lines = space.(LineSpace).Lines(b.Level)
 	} else {
@@ -124,36 +109,30 @@ func (b *Belief) move(space Space, step Step, w *Workspace) {
 		mv.stepAdd = append(mv.stepAdd[:0], step.Add...)
 		mv.stepF = step.fullF(mv.stepF, k)
 	}
+	if u != nil {
+		u.take(step, w, b.Dim*len(b.Key), k)
+	}
 	if b.Dim == 2 {
 		// What the noise alone would be cut into, without trying.
 		for float64(len(b.Key))*pieces(step.Q[0], mv.lattice)*pieces(step.Q[2], mv.lattice) > maxPieces {
 			mv.lattice = mv.lattice.coarser()
 		}
 	}
-	for !mv.send(b, w) {
+	for mv.follow(u); !mv.send(b, w); mv.follow(u) {
 		mv.lattice = mv.lattice.coarser()
 	}
 	b.Lattice = mv.lattice
 	b.Pruned += mv.pruned
 	b.LeftMap += mv.left
 	if len(w.out.Key) == 0 && len(w.departed.Key) == 0 {
+		if u != nil {
+			w.unturn(b, w.turned()-1)
+		}
 		return // nothing would be left: it stays where it is, and counts as gone
 	}
-	var into []int32
-	if w.trace != nil {
-		w.into = resize(w.into, len(w.source))
-		into = w.into
-		w.trace.fill(b, &w.out, w.source)
-	}
+	into := w.intoFor(u, len(w.out.Key))
 	w.merger.merge(&b.Gaussians, &w.out, k, mv.angular, perCell(b.Dim), into)
-	if w.trace != nil {
-		w.trace.Target = append(w.trace.Target[:0], into...)
-		w.trace.Predicted = len(b.Key)
-		w.trace.Kept = w.trace.Kept[:0]
-		for i := range b.Key {
-			w.trace.Kept = append(w.trace.Kept, int32(i))
-		}
-	}
+	w.end(u, b, &w.out, into, mv.source, mv.offset)
 }
 
 // maxPieces is how many pieces one step may cut a belief on a plane into, over
@@ -166,7 +145,6 @@ const maxPieces = 1 << 19
 func (mv *mover) send(b *Belief, w *Workspace) bool {
 	step, k := &mv.step, mv.k
 	mv.out.empty(len(b.Key), k)
-	w.source = w.source[:0]
 	mv.pruned, mv.left, mv.cuts = 0, 0, 0
 	add := step.Add
 	if step.Local != nil {
@@ -183,6 +161,7 @@ func (mv *mover) send(b *Belief, w *Workspace) bool {
 			mv.f.set(k, mv.stepF)
 		}
 		g.advance(&mv.f, add, step.Q)
+		mv.index = int32(i)
 		if b.Dim == 1 {
 			chart, cell := LineCell(b.Key[i])
 			mv.line(chart, cell, g)
@@ -192,19 +171,8 @@ func (mv *mover) send(b *Belief, w *Workspace) bool {
 				return false
 			}
 		}
-		for w.trace != nil && len(w.source) < len(mv.out.Key) {
-			w.source = append(w.source, int32(i))
-		}
 	}
 	return true
-}
-
-func (t *Trace) fill(b *Belief, out *Gaussians, source []int32) {
-	t.Source = append(t.Source[:0], source...)
-	t.Weight = t.Weight[:0]
-	for j, s := range source {
-		t.Weight = append(t.Weight, out.Mass[j]/b.Mass[s])
-	}
 }
 
 func resize[T any](s []T, n int) []T {
@@ -231,6 +199,14 @@ type mover struct {
 	departed     *Gaussians      // nil: what leaves the map is counted alone
 	taps         [MaxK][]float64 // of each quantity, since cuts nest
 	pruned, left float64
+	// Of what is recorded: the entry that is being sent, where a piece of it is in
+	// terms of its old cell, and what comes of that.
+	taped  bool
+	index  int32
+	from   [2]float64
+	moved  [2]float64 // how a cell of a plane became one of another lattice
+	source []int32
+	offset []float64
 }
 
 // newMover makes the workspace's mover ready for a belief, keeping what memory
@@ -238,7 +214,7 @@ type mover struct {
 func (w *Workspace) newMover(b *Belief, step Step) *mover {
 	mv := &w.mover
 	mv.k, mv.dim, mv.step, mv.out, mv.angular = len(b.Quantities), b.Dim, step, &w.out, angularMask(b.Quantities)
-	mv.lines, mv.departed = nil, nil
+	mv.lines, mv.departed, mv.taped = nil, nil, false
 	mv.lattice, mv.faint, mv.cuts, mv.pruned, mv.left = Lattice{}, 0, 0, 0, 0
 	if w.departs && b.Dim == 1 {
 		mv.departed = &w.departed

@@ -43,32 +43,24 @@ func TestTwoStateChain(t *testing.T) {
 			t.Fatal(err)
 		}
 		var w filter.Workspace
-		traces := make([]filter.Trace, len(c.evidence))
-		masses := [][]float64{append([]float64(nil), b.Mass...)}
+		var tape filter.Tape
+		w.Record(&tape, b)
 		for d, e := range c.evidence {
-			w.Record(&traces[d])
 			step := filter.NewStep(1)
 			step.Add[0] = 1
 			filter.Predict(b, g, step, &w)
 			if _, err := filter.Update(b, g, e, &w); err != nil {
 				t.Fatal(err)
 			}
-			masses = append(masses, append([]float64(nil), b.Mass...))
 			if math.Abs(b.Mass[0]-c.filtered[d]) > 5e-5 {
 				t.Errorf("day %d: filtered %.5f, want %.4f", d+1, b.Mass[0], c.filtered[d])
 			}
 		}
-		later := masses[len(masses)-1]
-		for d := len(c.evidence); d >= 0; d-- {
-			if d < len(c.evidence) {
-				now := make([]float64, 2)
-				filter.Smooth(now, masses[d], later, &traces[d])
-				later = now
+		tape.Smooth(b.Clone(), &w, func(d int, h *filter.Belief) {
+			if want := c.smooth[d]; math.Abs(h.Mass[0]-want) > 5e-5 {
+				t.Errorf("day %d: smoothed %.5f, want %.4f", d, h.Mass[0], want)
 			}
-			if want := c.smooth[d]; math.Abs(later[0]-want) > 5e-5 {
-				t.Errorf("day %d: smoothed %.5f, want %.4f", d, later[0], want)
-			}
-		}
+		})
 	}
 }
 

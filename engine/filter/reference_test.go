@@ -126,7 +126,8 @@ func (l byChart) LogLikelihood(dst []float64, at *filter.Columns) {
 }
 
 // TestSmoothAgainstAllPaths: masses smoothed backward over six steps equal the
-// sums over all paths through a small graph, with links of any weight.
+// sums over all paths through a small graph, with links of any weight, and the
+// most probable path is the likeliest of them.
 func TestSmoothAgainstAllPaths(t *testing.T) {
 	const seed, charts, steps = 42, 4, 6
 	rng := rand.New(rand.NewPCG(seed, 0))
@@ -136,7 +137,7 @@ func TestSmoothAgainstAllPaths(t *testing.T) {
 		var links []filtertest.Link
 		sum := 0.0
 		for d := range charts {
-			if rng.Float64() < 0.75 || d == charts-1 && sum == 0 {
+			if d != c && (rng.Float64() < 0.75 || d == (c+1)%charts) { // a chart that leads to itself would not be seen in a way
 				w := 0.1 + rng.Float64()
 				links = append(links, filtertest.Link{To: int32(d), Weight: w})
 				sum += w
@@ -162,12 +163,15 @@ func TestSmoothAgainstAllPaths(t *testing.T) {
 	}
 	// All paths: charts^(steps+1) of them.
 	var want [steps + 1][charts]float64
-	total := 0.0
-	var path [steps + 1]int
+	total, bestP := 0.0, 0.0
+	var path, best [steps + 1]int
 	var walk func(at int, p float64)
 	walk = func(at int, p float64) {
 		if at == steps {
 			total += p
+			if p > bestP {
+				bestP, best = p, path
+			}
 			for s, c := range path {
 				want[s][c] += p
 			}
@@ -186,12 +190,11 @@ func TestSmoothAgainstAllPaths(t *testing.T) {
 	}
 
 	var w filter.Workspace
-	traces := make([]filter.Trace, steps)
-	keys := [][]uint64{append([]uint64(nil), b.Key...)}
-	masses := [][]float64{append([]float64(nil), b.Mass...)}
+	var tape filter.Tape
+	w.Record(&tape, b)
+	first, start := b.BestOf(), b.Way()
 	logE := 0.0
 	for s := range steps {
-		w.Record(&traces[s])
 		step := filter.NewStep(1)
 		step.Add[0] = 1
 		filter.Predict(b, g, step, &w)
@@ -200,24 +203,39 @@ func TestSmoothAgainstAllPaths(t *testing.T) {
 			t.Fatal(err)
 		}
 		logE += e
-		keys = append(keys, append([]uint64(nil), b.Key...))
-		masses = append(masses, append([]float64(nil), b.Mass...))
 	}
 	if math.Abs(logE-math.Log(total)) > 1e-12 {
 		t.Errorf("seed %d: log evidence %v, over all paths %v", seed, logE, math.Log(total))
 	}
-	later := masses[steps]
-	for s := steps; s >= 0; s-- {
-		if s < steps {
-			now := make([]float64, len(masses[s]))
-			filter.Smooth(now, masses[s], later, &traces[s])
-			later = now
-		}
-		for i, key := range keys[s] {
-			c, _ := filter.LineCell(key)
-			if math.Abs(later[i]-want[s][c]/total) > 1e-12 {
-				t.Errorf("seed %d: chart %d after %d steps has %v, over all paths %v", seed, c, s, later[i], want[s][c]/total)
+	ways := tape.Ways(start)
+	end := b.Clone()
+	if got := math.Log(ways[steps].Restrict(end)); math.Abs(got+logE-math.Log(bestP)) > 1e-12 {
+		t.Errorf("seed %d: the best way has %v, of all paths %v", seed, got+logE, math.Log(bestP))
+	}
+	tape.SmoothAlong(end, ways, &w, func(s int, h *filter.Belief) {
+		for i, key := range h.Key {
+			if c, _ := filter.LineCell(key); (c == int32(best[s])) != (h.Mass[i] > 0) {
+				t.Errorf("seed %d: after %d steps chart %d of the best way has %v; of all paths it is on %d", seed, s, c, h.Mass[i], best[s])
 			}
 		}
+	})
+	var charts0 [steps + 1][]int32
+	tape.Smooth(b.Clone(), &w, func(s int, h *filter.Belief) {
+		for i, key := range h.Key {
+			c, _ := filter.LineCell(key)
+			charts0[s] = append(charts0[s], c)
+			if math.Abs(h.Mass[i]-want[s][c]/total) > 1e-12 {
+				t.Errorf("seed %d: chart %d after %d steps has %v, over all paths %v", seed, c, s, h.Mass[i], want[s][c]/total)
+			}
+		}
+	})
+	all := tape.Best(first, b)
+	if got := all[steps][b.End(all[steps]).Entry]; math.Abs(got+logE-math.Log(bestP)) > 1e-12 {
+		t.Errorf("seed %d: the best path has %v, of all paths %v", seed, got+logE, math.Log(bestP))
 	}
+	tape.Trace(all, b.End(all[steps]), b, func(s int, spot filter.Spot) {
+		if c := charts0[s][spot.Entry]; c != int32(best[s]) {
+			t.Errorf("seed %d: after %d steps the best path is on chart %d, of all paths on %d", seed, s, c, best[s])
+		}
+	})
 }

@@ -85,13 +85,16 @@ func (b *Belief) regrid(l Lattice, weight []float64, w *Workspace) {
 	density, most := b.densities(w.tiles.density, weight, k, b.Lattice.SpacingM)
 	w.tiles.density = density
 	mv := mover{k: k, dim: 2, lattice: l, out: &w.out, angular: angularMask(b.Quantities), faint: cutShare * most}
-	for !mv.resend(b, density) {
+	u := w.turn(b, regrouped)
+	for mv.follow(u); !mv.resend(b, density); mv.follow(u) {
 		mv.lattice = mv.lattice.coarser()
 	}
 	b.Lattice = mv.lattice
 	b.Pruned += mv.pruned
 	before := sum(b.Mass)
-	w.merger.merge(&b.Gaussians, &w.out, k, mv.angular, perCell(2), nil)
+	into := w.intoFor(u, len(w.out.Key))
+	w.merger.merge(&b.Gaussians, &w.out, k, mv.angular, perCell(2), into)
+	w.end(u, b, &w.out, into, mv.source, mv.offset)
 	scale := before / sum(b.Mass)
 	for i := range b.Mass {
 		b.Mass[i] *= scale
@@ -106,6 +109,7 @@ func (mv *mover) resend(b *Belief, density []float64) bool {
 	var g gaussian
 	for i, key := range b.Key {
 		b.load(&g, i, mv.k)
+		mv.index = int32(i)
 		mv.plane(b.Lattice, key, &g, density[i] < mv.faint)
 		if mv.cuts > maxPieces {
 			return false

@@ -16,15 +16,14 @@ const maxRefinements = 10
 // modes far apart compete, until it makes the measurement hardly blunt.
 // A sharp posterior does not pay for a wide prior: cells of a lattice far from all
 // to which the measurement leaves anything are dropped before, and of the Gaussians only
-// those are cut that it does not leave faint. A belief on lines, and one that
-// is traced, it updates as Update does.
+// those are cut that it does not leave faint. A belief on lines it updates as Update does.
 //
 // Without it, a measurement with a sigma well below the spacing of a lattice
 // leaves a posterior as wide as a cell, wherever in the cell the truth is; and
 // a Gaussian as wide as a cell is updated by a measurement that is not linear
 // over it, or that may be an outlier, as if it were one place.
 func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (logEvidence float64, err error) {
-	if b.Dim == 1 || b.Map != space.Fingerprint() || w.trace != nil {
+	if b.Dim == 1 || b.Map != space.Fingerprint() {
 		return Update(b, space, l, w)
 	}
 	if len(b.Quantities) > 0 {
@@ -32,6 +31,7 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 	}
 	plane := space.(PlaneSpace)
 	b.logTiles(plane, l, w)
+	turns := w.turned()
 	var before *Belief // before is set once the lattice is another one
 	tight, weighed := 0.0, false
 	for range maxRefinements {
@@ -55,6 +55,7 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 		b.keepNear(w)
 		// Not refine: the prior has been cut off where nothing is left, and
 		// its moments mean nothing there.
+		u := w.turn(b, refined)
 		b.interpolate(&w.tiles, w.keep)
 		w.tiles.spare.Surplus = b.Tiles.Surplus
 		if before == nil {
@@ -67,6 +68,7 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 		}
 		b.Lattice.SpacingM /= 2
 		b.dropEmptyTiles()
+		w.endTiles(u, b)
 		b.logTiles(plane, l, w)
 		weighed = false
 	}
@@ -85,6 +87,7 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 	if before != nil {
 		w.tiles.first = b.Tiles
 		*b = *before
+		w.unturn(b, turns)
 	}
 	return logEvidence, err
 }
@@ -93,6 +96,7 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 func (b *Belief) updateGaussians(space Space, l any, maxCells int, w *Workspace) (float64, error) {
 	k := len(b.Quantities)
 	_, linear := l.(LinearLikelihood)
+	turns := w.turned()
 	var before *Belief
 	b.condition(space, l, w)
 	for range maxRefinements {
@@ -121,6 +125,7 @@ func (b *Belief) updateGaussians(space Space, l any, maxCells int, w *Workspace)
 	logEvidence, err := b.settle(l, w)
 	if err != nil && before != nil {
 		*b = *before
+		w.unturn(b, turns)
 	}
 	return logEvidence, err
 }

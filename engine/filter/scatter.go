@@ -27,11 +27,13 @@ func Scatter(b *Belief, space LineSpace, varM2 float64, maxCells int, w *Workspa
 	if err != nil {
 		return err
 	}
+	u := w.turn(b, given)
 	fresh.Quantities = b.Quantities
 	fresh.Pruned += b.Pruned
 	fresh.LeftMap = b.LeftMap
 	fresh.Restarted = 1
 	*b = *fresh
+	u.gave(b)
 	return nil
 }
 

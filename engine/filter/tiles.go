@@ -62,6 +62,7 @@ func (b *Belief) predictTiles(step Step, w *Workspace) {
 	if step.Local != nil {
 		panic("filter: position-dependent motion needs a belief with quantities")
 	}
+	turn := w.turn(b, shifted)
 	b.Lattice.Origin = b.Lattice.Origin.Add(geo.Point{E: step.Add[0], N: step.Add[1]})
 	s := &b.Tiles.Surplus
 	q := [3]float64{step.Q[0] - s[0], step.Q[1] - s[1], step.Q[2] - s[2]}
@@ -74,7 +75,15 @@ func (b *Belief) predictTiles(step Step, w *Workspace) {
 	for i := range n {
 		w.tiles.taps.col, w.tiles.taps.row = u[i][0], u[i][1]
 		w.tiles.taps.weight = discreteNormal(w.tiles.taps.weight, lambda[i])
+		if i > 0 {
+			turn = w.turn(b, spreadOut)
+		}
 		b.spread(&w.tiles)
+		if turn != nil {
+			turn.kind, turn.spread = spreadOut, w.tiles.taps
+			turn.spread.weight = slices.Clone(turn.spread.weight)
+			w.endTiles(turn, b)
+		}
 	}
 }
 

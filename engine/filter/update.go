@@ -3,6 +3,7 @@ package filter
 import (
 	"errors"
 	"math"
+	"slices"
 
 	"leadline/engine/kernel"
 )
@@ -94,7 +95,7 @@ func (b *Belief) settle(l any, w *Workspace) (float64, error) {
 		b.Mean, w.out.Mean = w.out.Mean, b.Mean
 		b.Cov, w.out.Cov = w.out.Cov, b.Cov
 	}
-	b.thin(w.trace)
+	b.thin(w)
 	return logEvidence, nil
 }
 
@@ -150,8 +151,12 @@ const weighRun = 1024
 // and its inverse infinite.
 const leastMass = 1e-250
 
-// thin drops Gaussians below Floor and counts their mass as pruned.
-func (b *Belief) thin(t *Trace) {
+// thin drops Gaussians below Floor and counts their mass as pruned. w may be nil.
+func (b *Belief) thin(w *Workspace) {
+	var u *turn
+	if w != nil && w.tape != nil && slices.ContainsFunc(b.Mass, func(m float64) bool { return m < Floor }) {
+		u = w.turn(b, thinned)
+	}
 	k := len(b.Quantities)
 	p := k * (k + 1) / 2
 	j, kept := 0, 0.0
@@ -165,14 +170,11 @@ func (b *Belief) thin(t *Trace) {
 			copy(b.Mean[j*k:j*k+k], b.Mean[i*k:i*k+k])
 			copy(b.Cov[j*p:j*p+p], b.Cov[i*p:i*p+p])
 		}
-		if t != nil && len(t.Kept) == len(b.Mass) {
-			t.Kept[j] = t.Kept[i]
+		if u != nil {
+			u.kept = append(u.kept, int32(i))
 		}
 		kept += m
 		j++
-	}
-	if t != nil && len(t.Kept) == len(b.Mass) {
-		t.Kept = t.Kept[:j]
 	}
 	b.Key, b.Mass, b.Mean, b.Cov = b.Key[:j], b.Mass[:j], b.Mean[:j*k], b.Cov[:j*p]
 	for i := range b.Mass {

@@ -13,37 +13,52 @@ import (
 // run computes as many times as are due, all if flush is set.
 func (s *Session) run(flush bool) []*summary.Posterior {
 	var out []*summary.Posterior
-	for s.log.next < s.horizon() {
-		t := s.log.events[s.log.next].Time
-		if !s.state.begun {
-			if !flush && !s.due(t) {
-				return out
-			}
-			s.begin()
-		}
-		if !flush && !s.due(t) {
+	for {
+		t, end, ok := s.next(flush)
+		if !ok {
 			return out
 		}
-		end, motionOnly := s.log.group(s.log.next)
-		for stride := s.stride(); motionOnly && t.Seconds(s.state.time) < stride && s.silent(t); {
-			if end == s.horizon() {
-				if flush || s.pressed {
-					break
-				}
-				return out
-			}
-			next := s.log.events[end].Time
-			if !flush && !s.due(next) {
-				return out
-			}
-			t = next
-			end, motionOnly = s.log.group(end)
+		p := s.step(t, end)
+		if !s.unheard {
+			s.snapshot()
 		}
-		if p := s.step(t, end); p != nil && s.release(p) {
+		if p != nil && s.release(p) {
 			out = append(out, p)
 		}
 	}
-	return out
+}
+
+// next is the time of the next step and the end of its events, if it is due.
+func (s *Session) next(flush bool) (t sensor.Time, end int, ok bool) {
+	if s.log.next >= s.horizon() {
+		return 0, 0, false
+	}
+	t = s.log.events[s.log.next].Time
+	if !flush && !s.due(t) {
+		return 0, 0, false
+	}
+	if !s.state.begun {
+		s.begin()
+		if !flush && !s.due(t) {
+			return 0, 0, false
+		}
+	}
+	end, motionOnly := s.log.group(s.log.next)
+	for stride := s.stride(); motionOnly && t.Seconds(s.state.time) < stride && s.silent(t); {
+		if end == s.horizon() {
+			if flush || s.pressed {
+				break
+			}
+			return 0, 0, false
+		}
+		next := s.log.events[end].Time
+		if !flush && !s.due(next) {
+			return 0, 0, false
+		}
+		t = next
+		end, motionOnly = s.log.group(end)
+	}
+	return t, end, true
 }
 
 // horizon is the index of the first event that is not to be computed.
@@ -168,12 +183,10 @@ func (s *Session) step(t sensor.Time, end int) *summary.Posterior {
 		return nil
 	}
 	st.unread, s.fresh = true, false
-	var p *summary.Posterior
-	if !s.silent(t) {
-		p = s.summarise()
+	if s.silent(t) {
+		return nil
 	}
-	s.snapshot()
-	return p
+	return s.summarise()
 }
 
 // context is what a likelihood of ev needs to know.

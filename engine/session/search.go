@@ -38,6 +38,9 @@ type search struct {
 
 // keepPast keeps events that the log drops, for searches; in large bites.
 func (s *Session) keepPast(dropped []sensor.Event) {
+	if s.settled != nil {
+		s.settled(dropped)
+	}
 	if s.rates.lost == 0 && s.rates.moved == 0 {
 		return
 	}

@@ -182,6 +182,7 @@ type Session struct {
 	widest    int  // the most cells since shed
 	watch     func(Change)
 	finals    func(*summary.Posterior)
+	settled   func([]sensor.Event)
 }
 
 // New starts a session. An error says what is wrong with the configuration.

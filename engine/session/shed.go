@@ -16,5 +16,6 @@ func (s *Session) shed() {
 	}
 	s.Rest()
 	s.state.belief = s.state.belief.Clone()
+	s.work.Follow(s.state.belief)
 	s.widest = n
 }

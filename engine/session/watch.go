@@ -49,6 +49,14 @@ func (s *Session) Watch(f func(Change)) { s.watch = f }
 // writes a run of any length. f may keep a posterior and must not change it.
 func (s *Session) Finals(f func(*summary.Posterior)) { s.finals = f }
 
+// Settled has f called with the events that nothing goes back among any more, as the
+// session takes them, in order: what is left at the end of a drive is in Held. f
+// must not keep the slice.
+func (s *Session) Settled(f func([]sensor.Event)) { s.settled = f }
+
+// Held are the events that the session holds, in order; they must not be changed.
+func (s *Session) Held() []sensor.Event { return s.log.events }
+
 // Summarize makes the posterior of the present belief, for who watches it, and
 // changes nothing else.
 func (s *Session) Summarize(sum *summary.Summarizer, dst *summary.Posterior) error {
@@ -63,8 +71,8 @@ func (s *Session) Rest() {
 	if err != nil {
 		panic("session: " + err.Error()) // New made the same
 	}
-	s.work, s.cloud, s.sum, s.fresh = filter.Workspace{}, filter.Cloud{}, sum, false
-	s.work.Depart(s.rates.off > 0)
+	s.cloud, s.sum, s.fresh = filter.Cloud{}, sum, false
+	s.work.Release()
 }
 
 func (s *Session) watched(c Change) {

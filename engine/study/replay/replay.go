@@ -80,6 +80,8 @@ type Options struct {
 	// Moments and Belief are as in StreamOptions.
 	Moments []Moment
 	Belief  func(at sensor.Time, s *session.Session) error
+	// Settled, if set, is given the events as the session took them, in order.
+	Settled func([]sensor.Event)
 	// Stop, if set, is asked now and then; an error of it ends the run, and Run
 	// returns what came before beside it.
 	Stop func() error
@@ -102,6 +104,8 @@ func Run(d *drivefile.Drive, c session.Config, o Options) (*Result, error) {
 		return nil, err
 	}
 	r.moments = moments{due: o.Moments, give: o.Belief}
+	r.s.Settled(o.Settled)
+	r.settled = o.Settled
 	r.s.Finals(func(p *summary.Posterior) { r.Posteriors = append(r.Posteriors, p) })
 	events := Ordered(d.Events)
 	var stopped error

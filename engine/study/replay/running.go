@@ -22,6 +22,7 @@ type running struct {
 	n           int
 	fixes       *fixes // nil: nobody asks
 	moments     moments
+	settled     func([]sensor.Event)
 }
 
 // start makes the session of a drive.
@@ -91,6 +92,9 @@ func (r *running) add(ev sensor.Event) error {
 // end makes all posteriors final.
 func (r *running) end() *Result {
 	r.s.Flush()
+	if r.settled != nil {
+		r.settled(r.s.Held())
+	}
 	filterS := time.Since(r.began).Seconds()
 	r.Accepted, r.Refused = r.s.Counts()
 	r.Hash = r.s.Hash()

@@ -39,6 +39,8 @@ type StreamOptions struct {
 	// measurement and after the last are passed over. An error of it ends the run.
 	Moments []Moment
 	Belief  func(at sensor.Time, s *session.Session) error
+	// Settled is as in Options.
+	Settled func([]sensor.Event)
 	// Progress, if set, is called now and then with how many bytes and
 	// measurements were read since it was called last.
 	Progress func(bytes int64, measurements int)
@@ -62,6 +64,8 @@ func Stream(ctx context.Context, rd io.Reader, name string, c session.Config, o 
 		return nil, err
 	}
 	r.moments = moments{due: o.Moments, give: o.Belief}
+	r.s.Settled(o.Settled)
+	r.settled = o.Settled
 	finals := 0
 	r.s.Finals(func(p *summary.Posterior) { finals++; o.Final(p) })
 	var waiting queue

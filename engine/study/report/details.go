@@ -4,6 +4,8 @@ import (
 	"fmt"
 	"slices"
 	"strings"
+
+	"leadline/engine/study/score"
 )
 
 // detail is a named value of a run, and what it says.
@@ -51,6 +53,17 @@ func (x *Run) details() (out []detail) {
 		out = append(out, detail{"fixes", fmt.Sprint(h.Fixes), "satellite fixes compared with what was known just before each"})
 		add("fix_p95_m", h.P95M, "95 % of the distances to them, with their own error")
 		add("fix_outside95", h.Outside, "share of them outside of where 95 % should be")
+	}
+	if l := s.LookedBack; l != nil {
+		later := func(name, what string, h *score.Hindsight) {
+			if h != nil && h.Figures.RMSEM != nil {
+				out = append(out, detail{name, number(*h.Figures.RMSEM), fmt.Sprintf("root mean square error of %s, over the same times, m; 95 %% below %s m", what, number(*h.Figures.P95M))})
+			}
+		}
+		later("smoothed", "what is known given the whole drive", l.Smoothed)
+		later("path", "the most probable path", l.Path)
+		add("moved_mean_square", l.Agreement.MeanSquare, "by how much the mean moved, squared, in terms of what was expected; 2 is exact")
+		add("moved_within99", l.Agreement.Within99, "share of it within what 99 % should be in")
 	}
 	add("log_evidence", &s.LogEvidence, "of all measurements, nats")
 	return out

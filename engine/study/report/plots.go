@@ -38,10 +38,10 @@ func (x *Run) overTime() *picture {
 	p := newPlot(unit+" after the first posterior", "metres, logarithmic")
 	at := func(q point) float64 { return float64(q.ns-s.startNS) / 1e9 / per }
 	least, most := s.limitM, s.limitM
-	line := func(name string, c color.Color, width vg.Length, of func(point) float64, dashes ...vg.Length) {
+	line := func(name string, points []point, c color.Color, width vg.Length, of func(point) float64, dashes ...vg.Length) {
 		l := lines{style: draw.LineStyle{Color: c, Width: width, Dashes: dashes}}
 		open := false
-		for _, q := range s.points {
+		for _, q := range points {
 			y := of(q)
 			if math.IsNaN(y) {
 				open = false
@@ -59,14 +59,18 @@ func (x *Run) overTime() *picture {
 			p.name(name, l)
 		}
 	}
-	line("protection radius, where bounded", protection, vg.Points(1.8), func(q point) float64 { return q.protectionM })
-	line("95 % radius", truth, vg.Points(1.2), func(q point) float64 { return q.radiusM }, vg.Points(5), vg.Points(2))
-	line("error", estimate, vg.Points(1.2), func(q point) float64 {
+	line("protection radius, where bounded", s.points, protection, vg.Points(1.8), func(q point) float64 { return q.protectionM })
+	line("95 % radius", s.points, truth, vg.Points(1.2), func(q point) float64 { return q.radiusM }, vg.Points(5), vg.Points(2))
+	errorOf := func(q point) float64 {
 		if !q.known {
 			return math.NaN()
 		}
 		return q.errM
-	})
+	}
+	line("error", s.points, estimate, vg.Points(1.2), errorOf)
+	if x.later != nil {
+		line("error, looking back", x.later.points, wideInk, vg.Points(1.2), errorOf, vg.Points(3), vg.Points(1.5))
+	}
 	last := math.Max(span/per, 1e-3)
 	l := lines{xys: []plotter.XYs{{{X: 0, Y: s.limitM}, {X: last, Y: s.limitM}}}, style: draw.LineStyle{Color: limit, Width: vg.Points(1), Dashes: []vg.Length{vg.Points(2), vg.Points(2)}}}
 	p.Add(l)

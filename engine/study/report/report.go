@@ -55,6 +55,7 @@ type Run struct {
 
 	dir    string
 	series *series
+	later  *series // smoothed, nil if it was not looked back over
 }
 
 // mostDrawn is how many runs have pictures: the worst ones. With mostPoints over
@@ -115,25 +116,41 @@ func (r *Report) choose() {
 
 // read gathers what a run's table of posteriors holds.
 func (x *Run) read(runs int) error {
-	path := filepath.Join(x.dir, results.TableFile)
-	f, err := os.Open(path)
+	most := max(150, min(600, mostPoints/max(1, min(runs, mostDrawn))))
+	var err error
+	x.series, err = x.table(results.TableFile, most)
 	if errors.Is(err, fs.ErrNotExist) {
 		return fmt.Errorf("%s holds no %s: make it again with `leadline replay --out`", x.dir, results.TableFile)
 	}
 	if err != nil {
 		return err
 	}
-	defer f.Close()
-	x.series = newSeries(x.Run.AlertLimitM, max(150, min(600, mostPoints/max(1, min(runs, mostDrawn)))))
-	for row, err := range track.Rows(f, path) {
-		if err != nil {
+	if l := x.Score.LookedBack; l != nil && l.Smoothed != nil {
+		if x.later, err = x.table(results.SmoothedFile, most); err != nil {
 			return err
 		}
-		x.series.add(row)
 	}
 	x.Posteriors = x.series.counts()
 	x.Weak, x.WeakFound = x.series.weak.worst()
 	return nil
+}
+
+// table reads a table of posteriors.
+func (x *Run) table(name string, most int) (*series, error) {
+	path := filepath.Join(x.dir, name)
+	f, err := os.Open(path)
+	if err != nil {
+		return nil, err
+	}
+	defer f.Close()
+	s := newSeries(x.Run.AlertLimitM, most)
+	for row, err := range track.Rows(f, path) {
+		if err != nil {
+			return nil, err
+		}
+		s.add(row)
+	}
+	return s, nil
 }
 
 // compare sets further folders against the first, or further settings of one.

@@ -32,6 +32,9 @@ const (
 
 	GPXFile     = "track.gpx"     // if asked for
 	ParquetFile = "track.parquet" // if asked for
+
+	SmoothedFile = "smoothed.csv" // if asked for
+	PathFile     = "path.csv"     // if asked for
 )
 
 // Run is what a run was made of.

@@ -41,6 +41,9 @@ type Details struct {
 	TruthNote *TruthNote `json:"truth"`
 	// HeldOutFixes compares satellite fixes with what was known without them.
 	HeldOutFixes *HeldOut `json:"held_out_fixes,omitempty"`
+	// LookedBack is of the drive as it is known once it is over, where that was
+	// asked for.
+	LookedBack *LookedBack `json:"looked_back,omitempty"`
 	// Sensors say how the measurements of each sensor fell in what was expected.
 	Sensors []Innovation `json:"sensors"`
 }

@@ -22,6 +22,9 @@ type Input struct {
 	// Estimate has the score say what it might be instead (see Estimate).
 	Offset   Offset
 	Estimate bool
+	// FromNS, if not 0, has figures count from that time on, and not from the first
+	// located posterior.
+	FromNS int64
 }
 
 // Road is a directed edge near a place.

@@ -23,6 +23,7 @@ type Scorer struct {
 	details         details
 	fit             *fit
 	mix             []component
+	fromNS          int64 // see Input.FromNS
 }
 
 // New makes a scorer; the posteriors of in are not looked at, nor its start. It
@@ -37,12 +38,16 @@ func New(in Input) *Scorer {
 		score:  Score{Drive: in.Drive, Version: in.Version, Architecture: runtime.GOARCH},
 		roads:  in.Roads,
 		truths: truths{in.Truth, in.Offset},
+		fromNS: in.FromNS,
 	}
 	if in.Estimate {
 		s.fit = newFit()
 	}
 	return s
 }
+
+// Located is the time of the first located posterior, 0 before there is one.
+func (s *Scorer) Located() int64 { return s.firstNS }
 
 // Add takes the next posterior and returns its error: from the truth to the
 // scored position; not ok if the truth is not known. It panics if it is not
@@ -54,7 +59,7 @@ func (s *Scorer) Add(p *summary.Posterior) (truth Truth, errM float64, ok bool, 
 	s.n++
 	s.lastNS = p.TimeNS
 	s.score.Posteriors, s.score.LogEvidence = s.n, p.LogEvidence
-	if !s.located && p.Status == summary.Located {
+	if !s.located && (s.fromNS == 0 && p.Status == summary.Located || s.fromNS != 0 && p.TimeNS >= s.fromNS) {
 		s.located, s.firstNS = true, p.TimeNS
 	}
 	truth, m, ok := s.truths.at(p.TimeNS)

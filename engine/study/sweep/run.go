@@ -81,6 +81,8 @@ type work struct {
 	config session.Config
 	sinks  *sinks
 	dir    string // being written
+	hash   string // of the posteriors
+	back   lookback
 }
 
 func (w *work) do(ctx context.Context) error {
@@ -118,7 +120,8 @@ func (w *work) do(ctx context.Context) error {
 	if stopped != nil {
 		w.out.Run.Partial, w.out.Run.Stopped = true, reason(stopped)
 	}
-	if err := w.finish(res); err != nil {
+	w.hash = res.Hash
+	if err := w.finish(ctx, res); err != nil {
 		return err
 	}
 	return stopped
@@ -180,7 +183,7 @@ func (w *work) describe(driveSHA256 string) (results.Run, error) {
 		place(b.ID, b.Position())
 	}
 	key, err := json.Marshal([]any{
-		r.DriveSHA256, r.MapFingerprint, string(yaml), r.MaxCells, r.TruthOffset, j.EstimateTruth, j.HoldOutFixes, j.Beliefs,
+		r.DriveSHA256, r.MapFingerprint, string(yaml), r.MaxCells, r.TruthOffset, j.EstimateTruth, j.HoldOutFixes, j.Beliefs, j.Smooth, j.Path,
 		r.Version, r.Program, r.Architecture,
 	})
 	if err != nil {
@@ -231,7 +234,7 @@ func (w *work) replay(ctx context.Context) (*replay.Result, error) {
 		return nil, err
 	}
 	defer f.Close()
-	o := replay.StreamOptions{Final: w.sinks.final, Watch: w.sinks.innovations.Add, Progress: w.progress, Moments: w.moments(), Belief: w.belief}
+	o := replay.StreamOptions{Final: w.sinks.final, Watch: w.sinks.innovations.Add, Progress: w.progress, Moments: w.moments(), Belief: w.belief, Settled: w.settled()}
 	if w.job.HoldOutFixes {
 		o.BeforeFix = w.sinks.fixes.Add
 	}
@@ -263,7 +266,7 @@ func (w *work) whole(ctx context.Context) (*replay.Result, error) {
 			w.sinks.told = done
 		},
 	}
-	o.Stop, o.Moments, o.Belief = ctx.Err, w.moments(), w.belief
+	o.Stop, o.Moments, o.Belief, o.Settled = ctx.Err, w.moments(), w.belief, w.settled()
 	if w.job.HoldOutFixes {
 		o.BeforeFix = w.sinks.fixes.Add
 	}
@@ -293,13 +296,21 @@ func (w *work) begin() (err error) {
 	if w.sinks != nil {
 		w.sinks.drop()
 	}
+	w.back = lookback{}
 	w.sinks, err = newSinks(w)
 	return err
 }
 
 // finish writes what sums a run up, and puts its folder in its place.
-func (w *work) finish(res *replay.Result) (err error) {
+func (w *work) finish(ctx context.Context, res *replay.Result) (err error) {
 	o := w.out
+	back, err := w.lookBack(ctx)
+	switch {
+	case errors.Is(err, context.Canceled):
+		o.Run.Partial, o.Run.Stopped = true, reason(err)
+	case err != nil:
+		return err
+	}
 	if err := w.sinks.close(); err != nil {
 		return err
 	}
@@ -307,7 +318,7 @@ func (w *work) finish(res *replay.Result) (err error) {
 	if err != nil {
 		return fmt.Errorf("%s: comparing with the truth: %w", w.unit.drive.Path, err)
 	}
-	s.Sensors = w.sinks.innovations.End()
+	s.Sensors, s.LookedBack = w.sinks.innovations.End(), back
 	if w.job.HoldOutFixes {
 		s.HeldOutFixes = w.sinks.fixes.End()
 	}

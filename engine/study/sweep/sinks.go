@@ -45,10 +45,6 @@ func newSinks(w *work) (*sinks, error) {
 		return s, nil
 	}
 	s.drawn = len(w.unit.setting.Changes) == 0 && w.unit.drive.Map.Ground != nil
-	type writer struct {
-		name  string
-		begin func(io.Writer) (track.Writer, error)
-	}
 	writers := []writer{
 		{results.TableFile, func(f io.Writer) (track.Writer, error) { return track.NewTable(f) }},
 		{"track.geojson", func(f io.Writer) (track.Writer, error) { return track.NewFeatures(f, w.unit.drive.Name, w.truth) }},
@@ -63,22 +59,36 @@ func newSinks(w *work) (*sinks, error) {
 			return track.NewParquet(f, w.unit.drive.Name, w.job.Version), nil
 		}})
 	}
+	var err error
+	if s.writers, err = s.open(w, writers); err != nil {
+		s.drop()
+		return nil, err
+	}
+	return s, nil
+}
+
+// writer makes one of a file.
+type writer struct {
+	name  string
+	begin func(io.Writer) (track.Writer, error)
+}
+
+// open creates files and begins to write them.
+func (s *sinks) open(w *work, writers []writer) (begun []track.Writer, err error) {
 	for _, x := range writers {
 		f, err := os.Create(filepath.Join(w.dir, x.name))
 		if err != nil {
-			s.drop()
 			return nil, fmt.Errorf("--out: %w", err)
 		}
 		b := &file{bufio.NewWriterSize(f, 1<<16), f}
 		s.files = append(s.files, b)
 		out, err := x.begin(b)
 		if err != nil {
-			s.drop()
 			return nil, fmt.Errorf("--out: %w", err)
 		}
-		s.writers = append(s.writers, out)
+		begun = append(begun, out)
 	}
-	return s, nil
+	return begun, nil
 }
 
 // final takes a posterior. The first error stays.

@@ -61,6 +61,9 @@ type Job struct {
 	TruthOffset   score.Offset
 	EstimateTruth bool
 	HoldOutFixes  bool
+	// Smooth and Path have each drive looked back over, and written as it is known
+	// then, and as its most probable path.
+	Smooth, Path bool
 
 	// GPX and Parquet have tracks written in these forms, too.
 	GPX, Parquet bool

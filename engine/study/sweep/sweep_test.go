@@ -122,7 +122,7 @@ func TestSameHoweverMany(t *testing.T) {
 	one, four, cut := filepath.Join(t.TempDir(), "a"), filepath.Join(t.TempDir(), "b"), filepath.Join(t.TempDir(), "c")
 	run := func(dir string, parallel int) (*Job, []*Outcome, *Summary) {
 		j := job(dir, drives...)
-		j.Parallel, j.Settings, j.HoldOut = parallel, settings, []string{"boat-2"}
+		j.Parallel, j.Settings, j.HoldOut, j.Smooth, j.Path = parallel, settings, []string{"boat-2"}, true, true
 		out, sum := outcomes(t, j)
 		return j, out, sum
 	}
@@ -132,6 +132,14 @@ func TestSameHoweverMany(t *testing.T) {
 	}
 	if r := sum.Rows[0]; r.Figures.Drives != 2 || r.HeldOut == nil || r.HeldOut.Drives != 1 || r.Figures.RMSEM == nil || sum.Best == "" {
 		t.Errorf("%+v", r)
+	}
+	if l := out[0].Score.LookedBack; l == nil || l.Smoothed.Figures.Scored != out[0].Score.Figures.Scored || *l.Smoothed.Figures.RMSEM > *out[0].Score.Figures.RMSEM || l.Path == nil || l.Agreement.All != out[0].Score.Posteriors {
+		t.Errorf("looking back: %+v", l)
+	}
+	for _, name := range []string{results.SmoothedFile, results.PathFile, results.TableFile} {
+		if text := files(t, out[0].Dir)["/"+name]; strings.Count(text, "\n") != out[0].Score.Posteriors+1 {
+			t.Errorf("%s has %d lines for %d posteriors", name, strings.Count(text, "\n"), out[0].Score.Posteriors)
+		}
 	}
 	run(four, 4)
 	same(t, "one and four at a time", files(t, one), files(t, four))
@@ -145,7 +153,7 @@ func TestSameHoweverMany(t *testing.T) {
 	same(t, "before and after resuming", before, after)
 
 	j := job(cut, drives...)
-	j.Parallel, j.Settings, j.HoldOut = 1, settings, []string{"boat-2"}
+	j.Parallel, j.Settings, j.HoldOut, j.Smooth, j.Path = 1, settings, []string{"boat-2"}, true, true
 	ctx, cancel := context.WithCancel(context.Background())
 	defer cancel()
 	n := 0
