@@ -83,6 +83,9 @@ const (
 // back from the next spread. It does nothing to beliefs on lines. It reports
 // whether anything changed.
 func Adapt(b *Belief, maxCells int, w *Workspace) bool {
+	if len(b.Axes) > 0 {
+		return b.adaptSlices(maxCells, w)
+	}
 	if b.Dim == 2 && len(b.Quantities) > 0 && len(b.Key) > 0 {
 		return b.adaptGaussians(maxCells, w)
 	}
@@ -118,6 +121,9 @@ func (b *Belief) occupiedCells() int {
 
 // Cells returns how many cells or Gaussians carry mass.
 func (b *Belief) Cells() int {
+	if len(b.Axes) > 0 {
+		return b.Slices.cells()
+	}
 	if len(b.Quantities) > 0 {
 		return len(b.Key)
 	}

@@ -17,8 +17,12 @@ type Belief struct {
 	Dim        int
 	Quantities []Quantity
 
-	Gaussians       // every belief but a plane without quantities
+	Gaussians       // every belief but a plane without quantities or with velocity axes
 	Tiles     Tiles // a plane without quantities
+	// Axes are the positions and velocities of a plane that has velocity axes: its
+	// quantities are the axes of a grid, it has no others, and its mass is in Slices.
+	Axes   []Quantity
+	Slices Slices
 	// Tight is the variance, m², by which a lattice has yet to spread before
 	// Adapt may double its spacing, which would have made the last measurement
 	// blunt: see UpdateWithin.
@@ -89,6 +93,14 @@ type Tiles struct {
 
 // TileAt names a tile: its first cell is (Col·TileSide, Row·TileSide).
 type TileAt struct{ Col, Row int32 }
+
+// Moved are the quantities that a step is over: the belief's own, or its axes.
+func (b *Belief) Moved() []Quantity {
+	if len(b.Axes) > 0 {
+		return b.Axes
+	}
+	return b.Quantities
+}
 
 // K returns the number of quantities.
 func (b *Belief) K() int { return len(b.Quantities) }

@@ -9,6 +9,10 @@ import (
 // Read spells a belief out into dst, for those who read it.
 func (b *Belief) Read(dst *Cloud, space Space, w *Workspace) {
 	k := len(b.Quantities)
+	if len(b.Axes) > 0 {
+		b.margin(&w.slices).readTiles(dst)
+		return
+	}
 	if k == 0 {
 		b.readTiles(dst)
 		return
@@ -73,6 +77,10 @@ func (b *Belief) readTiles(dst *Cloud) {
 // exactly as Predict keeps them: the variance within cells included and the
 // surplus of a lattice taken off.
 func (b *Belief) Moments(space Space, w *Workspace) (mass float64, mean geo.Point, cov [3]float64) {
+	if len(b.Axes) > 0 {
+		m := b.Slices.moments()
+		return m.Mass, geo.Point{E: m.Mean[0], N: m.Mean[1]}, [3]float64{m.Cov[0], m.Cov[1], m.Cov[2]}
+	}
 	if len(b.Quantities) == 0 {
 		m := b.latticeMoments()
 		s := b.Tiles.Surplus
@@ -131,5 +139,6 @@ func (b *Belief) Clone() *Belief {
 	c.Cov = append([]float64(nil), b.Cov...)
 	c.Tiles.At = append([]TileAt(nil), b.Tiles.At...)
 	c.Tiles.Mass = append([]float64(nil), b.Tiles.Mass...)
+	c.Slices = b.Slices.clone()
 	return &c
 }

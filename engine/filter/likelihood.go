@@ -25,6 +25,13 @@ type LinearLikelihood interface {
 	Linearize(t *Terms, at *Columns, qs []Quantity, mean []float64)
 }
 
+// OfVelocity is a likelihood of the velocity on a plane alone. On a grid that has it as
+// axes, LogVelocity is ln p(measurement | velocity east, north), no sharper than the
+// variances least along each.
+type OfVelocity interface {
+	LogVelocity(east, north float64, least [2]float64) float64
+}
+
 // Terms is what LinearLikelihood.Linearize fills, for n positions, m residual
 // components and k quantities (k is at least the space's Dim).
 type Terms struct {

@@ -35,6 +35,7 @@ type Workspace struct {
 	residual      []float64 // and what densities works with
 	variance      []float64
 	tiles         tileSpace
+	slices        sliceSpace
 
 	foretell    *Predictive
 	predictions predictions
@@ -63,11 +64,15 @@ type Workspace struct {
 // step of the wrong size, is a mistake of the caller and panics.
 func Predict(b *Belief, space Space, step Step, w *Workspace) {
 	k := len(b.Quantities)
-	if want := max(k, b.Dim); len(step.Add) != want || len(step.Q) != want*(want+1)/2 || step.F != nil && len(step.F) != want*want {
+	if want := max(len(b.Moved()), b.Dim); len(step.Add) != want || len(step.Q) != want*(want+1)/2 || step.F != nil && len(step.F) != want*want {
 		panic(fmt.Sprintf("filter: step over %d quantities for a belief over %d", len(step.Add), want))
 	}
 	if b.Map != space.Fingerprint() {
 		panic("filter: the belief was seeded over another map")
+	}
+	if len(b.Axes) > 0 {
+		b.predictSlices(step, w)
+		return
 	}
 	if k == 0 {
 		b.predictTiles(step, w)

@@ -26,6 +26,9 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 	if b.Dim == 1 || b.Map != space.Fingerprint() {
 		return Update(b, space, l, w)
 	}
+	if len(b.Axes) > 0 {
+		return b.updateSlices(space.(PlaneSpace), l, maxCells, w)
+	}
 	if len(b.Quantities) > 0 {
 		return b.updateGaussians(space, l, maxCells, w)
 	}

@@ -32,6 +32,13 @@ func Seed(space Space, prior Prior, qs []Quantity, maxCells int) (*Belief, error
 		if len(qs) > 0 && (len(qs) < 2 || qs[0].Name != East || qs[1].Name != North) {
 			return nil, errors.New("filter: the first quantities on a plane are " + East + " and " + North)
 		}
+		if len(qs) > 2 && qs[2].Axis {
+			if len(qs) != 4 || qs[2].Name != VelocityEast || qs[3].Name != VelocityNorth {
+				return nil, errors.New("filter: a plane with velocity axes has no other quantities")
+			}
+			b.Quantities, b.Axes = nil, qs
+			return b, b.seedSlices(s, prior, maxCells)
+		}
 		return b, b.seedPlane(s, prior, maxCells)
 	}
 	return nil, fmt.Errorf("filter: %T is neither a LineSpace nor a PlaneSpace", space)

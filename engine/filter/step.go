@@ -11,6 +11,9 @@ type Quantity struct {
 	PriorMean, PriorVar float64
 	// DriftVar is the variance it gains a second, as a random walk.
 	DriftVar float64
+	// Axis has a velocity on a plane kept as two more axes of the grid, instead of
+	// in Gaussians (Slices).
+	Axis bool
 }
 
 // Names of quantities, with units. An error is what was measured, less what is
@@ -20,6 +23,9 @@ const (
 	East            = "east_m"             // position within the cell on a plane
 	North           = "north_m"            //
 	Heading         = "heading_rad"        // vehicle heading, clockwise from frame north
+	Speed           = "speed_mps"          // along a line, in its direction
+	VelocityEast    = "velocity_east_mps"  // in the frame
+	VelocityNorth   = "velocity_north_mps" //
 	OdometerScale   = "odometer_scale"     // true distance / measured distance - 1
 	GyroBias        = "gyro_bias_rad_s"    // error of a turn, a second
 	AltimeterOffset = "altimeter_offset_m" // error of (altitude - clearance)

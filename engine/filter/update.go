@@ -24,6 +24,9 @@ func Update(b *Belief, space Space, l any, w *Workspace) (logEvidence float64, e
 	if b.Map != space.Fingerprint() {
 		panic("filter: the belief was seeded over another map")
 	}
+	if len(b.Axes) > 0 {
+		return b.updateSlices(space.(PlaneSpace), l, 0, w)
+	}
 	if len(b.Quantities) == 0 {
 		return b.updateTiles(space.(PlaneSpace), l, w)
 	}
@@ -38,7 +41,14 @@ func Try(b *Belief, space Space, l any, w *Workspace) (logEvidence float64, err 
 		panic("filter: the belief was seeded over another map")
 	}
 	mass := b.Mass
-	if len(b.Quantities) == 0 {
+	if v, ok := l.(OfVelocity); ok && len(b.Axes) > 0 {
+		return b.Clone().weighVelocities(v)
+	}
+	if len(b.Axes) > 0 {
+		m := b.margin(&w.slices)
+		m.logTiles(space.(PlaneSpace), l, w)
+		mass = m.Tiles.Mass
+	} else if len(b.Quantities) == 0 {
 		b.logTiles(space.(PlaneSpace), l, w)
 		mass = b.Tiles.Mass
 	} else {

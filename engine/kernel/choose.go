@@ -15,3 +15,13 @@ func logAdd(dst []float64, log float64) { logAddPlain(dst, log, 0) }
 func weigh(dst, mass, logs []float64, most, least float64) {
 	weighPlain(dst, mass, logs, most, least, 0)
 }
+
+func addScaled(dst, src []float64, weight float64) { addScaledPlain(dst, src, weight, 0) }
+
+func combine(dst, src []float64, at []int, weight []float64) {
+	combinePlain(dst, src, at, weight, 0)
+}
+
+func weighBy(dst, mass, src []float64, at []int, weight []float64, sum *[16]float64) {
+	weighByPlain(dst, mass, src, at, weight, sum, 0)
+}

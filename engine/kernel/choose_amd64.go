@@ -47,3 +47,33 @@ func weigh(dst, mass, logs []float64, most, least float64) {
 	}
 	weighPlain(dst, mass, logs, most, least, n)
 }
+
+func addScaled(dst, src []float64, weight float64) {
+	n := 0
+	if vectors {
+		if n = len(dst) &^ 3; n > 0 {
+			addScaledAVX2(&dst[0], &src[0], n, weight)
+		}
+	}
+	addScaledPlain(dst, src, weight, n)
+}
+
+func combine(dst, src []float64, at []int, weight []float64) {
+	n := 0
+	if vectors {
+		if n = len(dst) &^ 3; n > 0 {
+			combineAVX2(&dst[0], &src[0], &at[0], &weight[0], n, len(at))
+		}
+	}
+	combinePlain(dst, src, at, weight, n)
+}
+
+func weighBy(dst, mass, src []float64, at []int, weight []float64, sum *[16]float64) {
+	n := 0
+	if vectors {
+		if n = len(dst) &^ 3; n > 0 {
+			weighByAVX2(&dst[0], &mass[0], &src[0], &at[0], &weight[0], &sum[0], n, len(at))
+		}
+	}
+	weighByPlain(dst, mass, src, at, weight, sum, n)
+}

@@ -9,6 +9,21 @@ package kernel
 //go:noescape
 func spreadAVX2(dst *float64, src *float64, weight *float64, n int, stride int, reach int)
 
+// addScaledAVX2 is addScaledPlain for n values, a multiple of 4.
+//
+//go:noescape
+func addScaledAVX2(dst *float64, src *float64, n int, weight float64)
+
+// combineAVX2 is combinePlain for n values, a multiple of 4.
+//
+//go:noescape
+func combineAVX2(dst *float64, src *float64, at *int, weight *float64, n int, taps int)
+
+// weighByAVX2 is weighByPlain for n values, a multiple of 4.
+//
+//go:noescape
+func weighByAVX2(dst *float64, mass *float64, src *float64, at *int, weight *float64, sum *float64, n int, taps int)
+
 // weighAVX2 is weighPlain for n values, a multiple of 4.
 //
 //go:noescape

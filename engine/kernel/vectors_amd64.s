@@ -99,6 +99,232 @@ fourDone:
 	VZEROUPPER
 	RET
 
+// func addScaledAVX2(dst *float64, src *float64, n int, weight float64)
+// Requires: AVX
+TEXT ·addScaledAVX2(SB), NOSPLIT, $0-32
+	MOVQ         dst+0(FP), AX
+	MOVQ         src+8(FP), CX
+	MOVQ         n+16(FP), DX
+	VBROADCASTSD weight+24(FP), Y0
+
+sixteen:
+	CMPQ    DX, $0x10
+	JB      sixteenDone
+	VMULPD  (CX), Y0, Y1
+	VADDPD  (AX), Y1, Y1
+	VMULPD  32(CX), Y0, Y2
+	VADDPD  32(AX), Y2, Y2
+	VMULPD  64(CX), Y0, Y3
+	VADDPD  64(AX), Y3, Y3
+	VMULPD  96(CX), Y0, Y4
+	VADDPD  96(AX), Y4, Y4
+	VMOVUPD Y1, (AX)
+	VMOVUPD Y2, 32(AX)
+	VMOVUPD Y3, 64(AX)
+	VMOVUPD Y4, 96(AX)
+	ADDQ    $0x80, AX
+	ADDQ    $0x80, CX
+	SUBQ    $0x10, DX
+	JMP     sixteen
+
+sixteenDone:
+four:
+	CMPQ    DX, $0x04
+	JB      fourDone
+	VMULPD  (CX), Y0, Y1
+	VADDPD  (AX), Y1, Y1
+	VMOVUPD Y1, (AX)
+	ADDQ    $0x20, AX
+	ADDQ    $0x20, CX
+	SUBQ    $0x04, DX
+	JMP     four
+
+fourDone:
+	VZEROUPPER
+	RET
+
+// func combineAVX2(dst *float64, src *float64, at *int, weight *float64, n int, taps int)
+// Requires: AVX
+TEXT ·combineAVX2(SB), NOSPLIT, $0-48
+	MOVQ dst+0(FP), AX
+	MOVQ src+8(FP), CX
+	MOVQ at+16(FP), DX
+	MOVQ weight+24(FP), BX
+	MOVQ n+32(FP), SI
+	MOVQ taps+40(FP), DI
+
+sixteen:
+	CMPQ         SI, $0x10
+	JB           sixteenDone
+	VBROADCASTSD (BX), Y0
+	MOVQ         (DX), R9
+	VMULPD       (CX)(R9*8), Y0, Y2
+	VMULPD       32(CX)(R9*8), Y0, Y3
+	VMULPD       64(CX)(R9*8), Y0, Y4
+	VMULPD       96(CX)(R9*8), Y0, Y5
+	MOVQ         $0x00000001, R8
+
+sixteenTap:
+	CMPQ         R8, DI
+	JGE          sixteenOut
+	VBROADCASTSD (BX)(R8*8), Y0
+	MOVQ         (DX)(R8*8), R9
+	VMULPD       (CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y2, Y2
+	VMULPD       32(CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y3, Y3
+	VMULPD       64(CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y4, Y4
+	VMULPD       96(CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y5, Y5
+	INCQ         R8
+	JMP          sixteenTap
+
+sixteenOut:
+	VMOVUPD Y2, (AX)
+	VMOVUPD Y3, 32(AX)
+	VMOVUPD Y4, 64(AX)
+	VMOVUPD Y5, 96(AX)
+	ADDQ    $0x00000080, AX
+	ADDQ    $0x00000080, CX
+	SUBQ    $0x00000010, SI
+	JMP     sixteen
+
+sixteenDone:
+four:
+	CMPQ         SI, $0x04
+	JB           fourDone
+	VBROADCASTSD (BX), Y0
+	MOVQ         (DX), R9
+	VMULPD       (CX)(R9*8), Y0, Y1
+	MOVQ         $0x00000001, R8
+
+fourTap:
+	CMPQ         R8, DI
+	JGE          fourOut
+	VBROADCASTSD (BX)(R8*8), Y0
+	MOVQ         (DX)(R8*8), R9
+	VMULPD       (CX)(R9*8), Y0, Y0
+	VADDPD       Y0, Y1, Y1
+	INCQ         R8
+	JMP          fourTap
+
+fourOut:
+	VMOVUPD Y1, (AX)
+	ADDQ    $0x00000020, AX
+	ADDQ    $0x00000020, CX
+	SUBQ    $0x00000004, SI
+	JMP     four
+
+fourDone:
+	VZEROUPPER
+	RET
+
+// func weighByAVX2(dst *float64, mass *float64, src *float64, at *int, weight *float64, sum *float64, n int, taps int)
+// Requires: AVX
+TEXT ·weighByAVX2(SB), NOSPLIT, $0-64
+	MOVQ    dst+0(FP), AX
+	MOVQ    mass+8(FP), CX
+	MOVQ    sum+40(FP), DX
+	VXORPD  Y0, Y0, Y0
+	VMOVUPD (DX), Y1
+	VMOVUPD 32(DX), Y2
+	VMOVUPD 64(DX), Y3
+	VMOVUPD 96(DX), Y4
+	MOVQ    src+16(FP), BX
+	MOVQ    at+24(FP), SI
+	MOVQ    weight+32(FP), DI
+	MOVQ    n+48(FP), R8
+	MOVQ    taps+56(FP), R9
+
+sixteen:
+	CMPQ         R8, $0x10
+	JB           sixteenDone
+	VBROADCASTSD (DI), Y5
+	MOVQ         (SI), R11
+	VMULPD       (BX)(R11*8), Y5, Y7
+	VMULPD       32(BX)(R11*8), Y5, Y8
+	VMULPD       64(BX)(R11*8), Y5, Y9
+	VMULPD       96(BX)(R11*8), Y5, Y10
+	MOVQ         $0x00000001, R10
+
+sixteenTap:
+	CMPQ         R10, R9
+	JGE          sixteenOut
+	VBROADCASTSD (DI)(R10*8), Y5
+	MOVQ         (SI)(R10*8), R11
+	VMULPD       (BX)(R11*8), Y5, Y6
+	VADDPD       Y6, Y7, Y7
+	VMULPD       32(BX)(R11*8), Y5, Y6
+	VADDPD       Y6, Y8, Y8
+	VMULPD       64(BX)(R11*8), Y5, Y6
+	VADDPD       Y6, Y9, Y9
+	VMULPD       96(BX)(R11*8), Y5, Y6
+	VADDPD       Y6, Y10, Y10
+	INCQ         R10
+	JMP          sixteenTap
+
+sixteenOut:
+	VMULPD  (CX), Y7, Y7
+	VMAXPD  Y0, Y7, Y7
+	VMOVUPD Y7, (AX)
+	VADDPD  Y7, Y1, Y1
+	VMULPD  32(CX), Y8, Y8
+	VMAXPD  Y0, Y8, Y8
+	VMOVUPD Y8, 32(AX)
+	VADDPD  Y8, Y2, Y2
+	VMULPD  64(CX), Y9, Y9
+	VMAXPD  Y0, Y9, Y9
+	VMOVUPD Y9, 64(AX)
+	VADDPD  Y9, Y3, Y3
+	VMULPD  96(CX), Y10, Y10
+	VMAXPD  Y0, Y10, Y10
+	VMOVUPD Y10, 96(AX)
+	VADDPD  Y10, Y4, Y4
+	ADDQ    $0x00000080, AX
+	ADDQ    $0x00000080, CX
+	ADDQ    $0x00000080, BX
+	SUBQ    $0x00000010, R8
+	JMP     sixteen
+
+sixteenDone:
+four:
+	CMPQ         R8, $0x04
+	JB           fourDone
+	VBROADCASTSD (DI), Y5
+	MOVQ         (SI), R11
+	VMULPD       (BX)(R11*8), Y5, Y6
+	MOVQ         $0x00000001, R10
+
+fourTap:
+	CMPQ         R10, R9
+	JGE          fourOut
+	VBROADCASTSD (DI)(R10*8), Y5
+	MOVQ         (SI)(R10*8), R11
+	VMULPD       (BX)(R11*8), Y5, Y5
+	VADDPD       Y5, Y6, Y6
+	INCQ         R10
+	JMP          fourTap
+
+fourOut:
+	VMULPD  (CX), Y6, Y6
+	VMAXPD  Y0, Y6, Y6
+	VMOVUPD Y6, (AX)
+	VADDPD  Y6, Y1, Y1
+	ADDQ    $0x00000020, AX
+	ADDQ    $0x00000020, CX
+	ADDQ    $0x00000020, BX
+	SUBQ    $0x00000004, R8
+	JMP     four
+
+fourDone:
+	VMOVUPD Y1, (DX)
+	VMOVUPD Y2, 32(DX)
+	VMOVUPD Y3, 64(DX)
+	VMOVUPD Y4, 96(DX)
+	VZEROUPPER
+	RET
+
 DATA half<>+0(SB)/8, $0x3fe0000000000000
 DATA half<>+8(SB)/8, $0x3fe0000000000000
 DATA half<>+16(SB)/8, $0x3fe0000000000000

@@ -3,6 +3,7 @@ package kernel
 import (
 	"math"
 	"math/rand/v2"
+	"slices"
 	"testing"
 )
 
@@ -187,4 +188,65 @@ func BenchmarkVectors(b *testing.B) {
 	run("logadd-plain", func() { logAddPlain(dst, -3, 0) })
 	run("weigh", func() { Weigh(dst, src, logs, 0, 1e-250) })
 	run("weigh-plain", func() { weighPlain(dst, src, logs, 0, 1e-250, 0) })
+}
+
+// TestCombineBits compares AddScaled, Combine and WeighBy with plain Go, for every
+// length of a tail, and with sums written another way.
+func TestCombineBits(t *testing.T) {
+	const seed = 6
+	rng := rand.New(rand.NewPCG(seed, 1))
+	src := make([]float64, 200)
+	for i := range src {
+		src[i] = rng.NormFloat64() * math.Exp(-300*rng.Float64())
+		if rng.IntN(4) == 0 {
+			src[i] = awkward[rng.IntN(len(awkward))]
+		}
+	}
+	for n := range 75 {
+		for taps := 1; taps <= 9; taps += 2 {
+			var at []int
+			var weight []float64
+			for range taps {
+				at, weight = append(at, rng.IntN(len(src)-n)), append(weight, rng.NormFloat64())
+			}
+			got, want := make([]float64, n), make([]float64, n)
+			Combine(got, src, at, weight)
+			combinePlain(want, src, at, weight, 0)
+			sameBits(t, "Combine", got, want)
+			AddScaled(got, src[at[0]:at[0]+n], weight[0])
+			addScaledPlain(want, src[at[0]:at[0]+n], weight[0], 0)
+			sameBits(t, "AddScaled", got, want)
+			mass := slices.Clone(src[:n])
+			for i := range got {
+				sum := weight[0] * src[at[0]+i]
+				size := math.Abs(sum)
+				for k := range at {
+					sum += weight[k] * src[at[k]+i]
+					size += math.Abs(weight[k] * src[at[k]+i])
+				}
+				if math.Abs(got[i]-sum) > 1e-14*size {
+					t.Fatalf("%d of %d values, %d taps: %v, want %v", i, n, taps, got[i], sum)
+				}
+			}
+			var sum [16]float64
+			weighByPlain(want, mass, src, at, weight, &sum, 0)
+			total := WeighBy(got, mass, src, at, weight)
+			sameBits(t, "WeighBy", got, want)
+			var four [4]float64
+			for i := range four {
+				four[i] = sum[i] + sum[4+i] + (sum[8+i] + sum[12+i])
+			}
+			sameBits(t, "WeighBy's sum", []float64{total}, []float64{four[0] + four[1] + (four[2] + four[3])})
+			plain := 0.0
+			for _, v := range got {
+				if v < 0 {
+					t.Fatalf("WeighBy leaves %v", v)
+				}
+				plain += v
+			}
+			if math.Abs(total-plain) > 1e-12*plain {
+				t.Fatalf("WeighBy over %d values: %v, want %v", n, total, plain)
+			}
+		}
+	}
 }

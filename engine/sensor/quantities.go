@@ -22,7 +22,8 @@ import (
 // (prior uniform: σ = π/√3) and the odometer's scale. An odometer's scale
 // applies to travel and body_displacement, not to speed.
 //
-// The other nuisances are there if a sensor describes them.
+// A velocity that the suite has estimated comes right after the position. The other
+// nuisances are there if a sensor describes them.
 func (s *Suite) Quantities(dim int) []filter.Quantity {
 	mustDim(dim)
 	any := func(of func(Sensor) bool) bool {
@@ -68,6 +69,7 @@ func (s *Suite) Quantities(dim int) []filter.Quantity {
 		}
 		of = append(of, q)
 	}
+	of = append(s.Vehicle.velocities(dim), of...)
 	switch {
 	case dim == 1:
 		return append([]filter.Quantity{{Name: filter.Along}}, of...)

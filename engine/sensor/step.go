@@ -41,7 +41,8 @@ var NoHeading = math.Inf(1)
 // (forward·(1 + scale), right), and needs a heading among the quantities.
 //
 // Every quantity gains its drift. Time that nobody covers gains the gap's
-// spread (type Vehicle, gapPrior); a turn that nobody measures, turnVar.
+// spread (type Vehicle, gapPrior), or is gone through with the velocity that is
+// estimated (coast); a turn that nobody measures, turnVar.
 func (m *Motion) Step(qs []filter.Quantity, dim int, frame geo.Frame, pose Pose) (filter.Step, error) {
 	mustDim(dim)
 	k := max(len(qs), dim)
@@ -72,7 +73,10 @@ func (m *Motion) Step(qs []filter.Quantity, dim int, frame geo.Frame, pose Pose)
 	if err != nil {
 		return s, err
 	}
-	if gapS := float64(m.To-m.From-covered) / 1e9; gapS > 0 {
+	switch gapS := float64(m.To-m.From-covered) / 1e9; {
+	case gapS > 0 && velocityIn(qs, dim) >= 0:
+		coast(&s, qs, dim, gapS)
+	case gapS > 0:
 		mean, v := m.Suite.Vehicle.gap(dim).step(m.GapAgeS, gapS, m.HasVelocity)
 		for i := range dim {
 			if m.HasVelocity {

@@ -56,6 +56,16 @@ type Vehicle struct {
 	MaxSpeedMPS  float64 `yaml:"max_speed_mps"`
 	MaxAccelMPS2 float64 `yaml:"max_accel_mps2"`
 	MaxTurnDPS   float64 `yaml:"max_turn_dps"`
+	// VelocityDriftMPSPerSqrtS, above 0, has the velocity estimated: the standard
+	// deviation of its change in a second, which grows with the root of the time. While
+	// nothing measures the motion it then takes the place of the motion prior.
+	// VelocitySigmaMPS is that of the velocity at the start along each axis, or of the
+	// speed on roads: unless said, that of a speed anywhere up to MaxSpeedMPS.
+	// VelocityGrid keeps it as two more axes of the grid on a plane, instead of as
+	// quantities of each cell's Gaussians.
+	VelocityDriftMPSPerSqrtS float64 `yaml:"velocity_drift_mps_per_sqrt_s"`
+	VelocitySigmaMPS         float64 `yaml:"velocity_sigma_mps"`
+	VelocityGrid             bool    `yaml:"velocity_grid"`
 	// LowestM and HighestM span the plausible heights of the ground: an
 	// unknown height has the density of a uniform distribution over them.
 	// Both 0: -500 to 9000 m on roads, -11000 to 9000 m on a plane (the

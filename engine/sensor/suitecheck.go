@@ -68,6 +68,14 @@ func (s *Suite) problems() []Finding {
 	f.unless0("vehicle.max_speed_mps", v.MaxSpeedMPS, 0.01, 1e4)
 	f.unless0("vehicle.max_accel_mps2", v.MaxAccelMPS2, 1e-3, 1e3)
 	f.unless0("vehicle.max_turn_dps", v.MaxTurnDPS, 1e-3, 1e4)
+	f.unless0("vehicle.velocity_drift_mps_per_sqrt_s", v.VelocityDriftMPSPerSqrtS, 1e-4, 1e3)
+	f.unless0("vehicle.velocity_sigma_mps", v.VelocitySigmaMPS, 1e-3, 1e4)
+	if !v.HasVelocity() && (v.VelocitySigmaMPS != 0 || v.VelocityGrid) {
+		f.add("vehicle.velocity_drift_mps_per_sqrt_s", "velocity_sigma_mps and velocity_grid mean nothing without it: say by how much the velocity changes in a second")
+	}
+	if v.VelocityGrid && len(s.Quantities(2)) > 4 {
+		f.add("vehicle.velocity_grid", "a grid with velocity axes has no room for a heading or a nuisance: leave out velocity_grid, or %s", s.Quantities(2)[4].Name)
+	}
 	f.within("vehicle.lowest_m", v.LowestM, -20000, 20000)
 	f.within("vehicle.highest_m", v.HighestM, -20000, 20000)
 	if (v.LowestM != 0 || v.HighestM != 0) && !(v.HighestM-v.LowestM >= 1) {

@@ -121,7 +121,7 @@ func (s *Session) wander(to sensor.Time) {
 	st := &s.state
 	for made := 0.0; st.time < to; {
 		s.gather(st.time, to)
-		whole, err := s.motion.Step(st.belief.Quantities, s.dim, s.space.Frame(), st.pose)
+		whole, err := s.motion.Step(st.belief.Moved(), s.dim, s.space.Frame(), st.pose)
 		if err != nil {
 			panic(fmt.Sprintf("session: %v", err)) // a gap is a step for any quantities
 		}

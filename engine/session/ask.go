@@ -36,6 +36,9 @@ func (s *Session) read(sum *summary.Summarizer, dst *summary.Posterior) error {
 	st := &s.state
 	b := st.belief
 	b.Read(&s.cloud, s.space, &s.work)
+	if v, ok := s.velocity(); ok {
+		st.speed = v
+	}
 	in := summary.Input{
 		TimeNS: int64(st.time), Frame: s.space.Frame(), Belief: b, Cloud: &s.cloud,
 		Speed: st.speed, Evidence: st.evidence, LogEvidence: st.logEvidence,

@@ -90,6 +90,9 @@ func Restore(cfg Config, checkpoint []byte) (*Session, error) {
 	}
 	c := exact.Reader(checkpoint[head:n])
 	s.state.belief = &filter.Belief{Quantities: s.suite.Quantities(s.dim)}
+	if gridded(s.state.belief.Quantities) {
+		s.state.belief.Quantities, s.state.belief.Axes = nil, s.state.belief.Quantities
+	}
 	s.setRates()
 	beside := s.state.aside.loose.Quantities
 	var found []recipe

@@ -120,6 +120,9 @@ func (s *Session) predict() {
 	if s.lines != nil && step.Local != nil {
 		n = min(sensor.Time(math.Ceil(s.motion.TravelledM()/partShiftM)), maxShifts, to-from)
 	}
+	if s.suite.Vehicle.HasVelocity() && s.motion.GapS() > 0 {
+		n = min(s.coasts(), maxShifts, to-from)
+	}
 	if n <= 1 {
 		s.predictBy(step)
 		return
@@ -139,7 +142,7 @@ func (s *Session) predict() {
 // motionStep is the step of the motion that was gathered.
 func (s *Session) motionStep() filter.Step {
 	st := &s.state
-	step, err := s.motion.Step(st.belief.Quantities, s.dim, s.space.Frame(), st.pose)
+	step, err := s.motion.Step(st.belief.Moved(), s.dim, s.space.Frame(), st.pose)
 	if err != nil {
 		panic(fmt.Sprintf("session: %v", err)) // Supports refuses what a step cannot take
 	}
@@ -175,6 +178,7 @@ func (s *Session) predictBy(step filter.Step) {
 		}
 	}
 	st.speed = st.pace.speed(st.belief, s.suite.Vehicle.MaxAccelMPS2)
+	s.learnVelocity()
 	if l := s.followsRoad(travelledM); l != nil {
 		s.weigh(sensor.Event{Time: m.To, Sensor: roadSensor, Measurement: sensor.Turn{}}, l)
 	}

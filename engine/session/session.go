@@ -247,10 +247,15 @@ func prepare(c Config) (*Session, error) {
 	if err != nil {
 		return nil, err
 	}
-	if s.dim == 2 && len(s.suite.Quantities(s.dim)) == 0 {
+	if qs := s.suite.Quantities(s.dim); s.dim == 2 && (len(qs) == 0 || gridded(qs)) {
 		s.maxCells = PointsPerGaussian * min(s.maxCells, math.MaxInt/PointsPerGaussian)
 	}
 	return s, nil
+}
+
+// gridded says that velocities are axes of the grid.
+func gridded(qs []filter.Quantity) bool {
+	return slices.ContainsFunc(qs, func(q filter.Quantity) bool { return q.Axis })
 }
 
 // Latest returns the latest posterior, or nil before the first. It must not

@@ -54,7 +54,7 @@ func (s *Session) sound(beside []filter.Quantity, searches int) error {
 }
 
 func (s *Session) soundBelief(b *filter.Belief) error {
-	if b == nil || b.Map != s.space.Fingerprint() || b.Dim != s.dim || !slices.Equal(b.Quantities, s.suite.Quantities(s.dim)) {
+	if b == nil || b.Map != s.space.Fingerprint() || b.Dim != s.dim || !slices.Equal(b.Moved(), s.suite.Quantities(s.dim)) || len(b.Axes) > 0 != gridded(b.Moved()) {
 		return errors.New("a belief is of another map or of other quantities")
 	}
 	k, n := len(b.Quantities), len(b.Key)
@@ -64,7 +64,10 @@ func (s *Session) soundBelief(b *filter.Belief) error {
 	if len(b.Tiles.Mass) != len(b.Tiles.At)*filter.TileSide*filter.TileSide {
 		return errors.New("a belief's tiles are not whole")
 	}
-	if n == 0 && len(b.Tiles.At) == 0 {
+	if len(b.Axes) > 0 && !b.Slices.Whole() {
+		return errors.New("a belief's slices are not whole")
+	}
+	if n == 0 && len(b.Tiles.At) == 0 && len(b.Slices.At) == 0 {
 		return errors.New("a belief is empty")
 	}
 	if s.lines == nil {

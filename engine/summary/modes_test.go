@@ -186,7 +186,7 @@ func TestMoments(t *testing.T) {
 func TestRoadFigures(t *testing.T) {
 	r := street(geo.Point{E: 100, N: 100}, geo.Point{E: 700, N: 900}, "Mill Road") // direction (0.6, 0.8)
 	in := roadInput(r, 1, []part{{0, 1, 400.5, 3}})
-	in.Speed = Speed{true, 8, 0.2}
+	in.Speed = Speed{Known: true, MPS: 8, SigmaMPS: 0.2}
 	_, p := summarize(t, Options{LateralSigmaM: 2}, in)
 	want := Cov{9*0.36 + 4*0.64, (9 - 4) * 0.48, 9*0.64 + 4*0.36}
 	// Mass below 1e-13 a cell is left out: 1e-9 of the variance.

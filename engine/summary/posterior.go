@@ -156,10 +156,12 @@ type Direction struct {
 	SigmaRad float64
 }
 
-// Speed is the vehicle's speed where a sensor gives it.
+// Speed is the vehicle's speed where a sensor gives it or it is estimated, then on a
+// plane with the direction in which the vehicle goes, if that is known to 90°.
 type Speed struct {
 	Known         bool
 	MPS, SigmaMPS float64
+	Course        Direction
 }
 
 // Protection is the smallest circle around the mean that the vehicle is

@@ -30,6 +30,10 @@ func (s *Summarizer) quantities(dst *Posterior, in *Input) {
 			dst.Heading = Direction{true, geo.WrapCompass(mean + s.turned.g), sigma}
 			continue
 		}
+		switch b.Quantities[q].Name {
+		case filter.Speed, filter.VelocityEast, filter.VelocityNorth:
+			continue // Posterior.Speed
+		}
 		dst.Nuisances = append(dst.Nuisances, Nuisance{b.Quantities[q].Name, mean, sigma})
 	}
 	dst.EntropyNats = s.entropy(in)
