@@ -15,7 +15,7 @@ FUZZ_TIME ?= 60s
 # the code. A tree may be named before it exists.
 RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/livelog/... ./engine/study/sweep ./engine/study/forecast ./engine/study/tune ./engine/journal/... ./cmd/...
 
-.PHONY: build test race fuzz credibility credibility-reach survive bench bench-short benchmarks fetch fetch-arrow fetch-clients fetch-page page page-check generate generate-check vectors \
+.PHONY: build test race fuzz credibility study local credibility-reach survive bench bench-short benchmarks fetch fetch-arrow fetch-clients fetch-page page page-check generate generate-check vectors \
 	generate-clients generate-clients-check format format-check vet lint lint-only vuln licences licences-check clean
 
 # build makes one static binary.
@@ -47,6 +47,17 @@ credibility:
 # writes build/credibility-reach.json.
 credibility-reach:
 	$(GO) run ./fixtures/credibility/run -table reach
+
+# study draws the table of claims about studies of drives and writes
+# build/study.json; a run that was stopped goes on. STUDY takes flags of the
+# command, such as -rows or -share.
+study:
+	$(GO) run ./fixtures/credibility/run -table study $(STUDY)
+
+# local puts a log of your own, of NMEA 0183 sentences with satellite fixes, speeds,
+# headings and depths, through the case of depths: make local LOG=survey.nmea
+local:
+	$(GO) run ./fixtures/study/local $(LOCAL) "$(LOG)"
 
 # survive kills servers, damages their files, fills their disk and sets back their
 # clock, and writes build/survive.json: at most a quarter of an hour a row.

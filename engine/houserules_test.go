@@ -79,9 +79,15 @@ var mayImport = map[string][]string{
 		"engine/filter", "engine/filter/filtertest", "engine/geo", "engine/plane", "engine/sensor", "engine/session", "engine/summary",
 		"engine/traffic", "engine/study/score", "network", "network/roadfile", "terrain", "terrain/heightfile", "fixtures/accept", "fixtures/drives", "fixtures/outside", "fixtures/reference", "fixtures/roads", "fixtures/sim",
 	},
-	"fixtures/credibility/run": {"fixtures/credibility"},
-	"fixtures/bench":           {"engine/filter", "engine/geo", "engine/plane", "engine/sensor", "terrain"},
-	"fixtures/bench/run":       {"fixtures/bench"},
+	"fixtures/credibility/run": {"fixtures/credibility", "fixtures/study"},
+	"fixtures/study": {
+		"engine/drivefile", "engine/filter", "engine/geo", "engine/logfile", "engine/plane", "engine/sensor", "engine/session", "engine/summary",
+		"engine/study/forecast", "engine/study/replay", "engine/study/report", "engine/study/score", "engine/study/sweep", "engine/study/tune",
+		"network", "network/roadfile", "terrain", "terrain/heightfile", "fixtures/credibility", "fixtures/drives", "fixtures/outside", "fixtures/roads", "fixtures/sim",
+	},
+	"fixtures/study/local": {"engine/logfile", "fixtures/study", "terrain/heightfile"},
+	"fixtures/bench":       {"engine/filter", "engine/geo", "engine/plane", "engine/sensor", "terrain"},
+	"fixtures/bench/run":   {"fixtures/bench"},
 	"fixtures/survive": {
 		api, "engine/client", "engine/filter", "engine/journal", "engine/sensor", "engine/server", "engine/wire", "network/roadfile",
 		"fixtures/drives", "fixtures/roads", "fixtures/sim",

@@ -5,17 +5,18 @@ import (
 	"testing"
 
 	"leadline/engine/study/forecast"
+	"leadline/fixtures/study"
 )
 
 // TestRoadsOfAMap: every directed edge has a figure, a compass tells more than a
 // gyro alone, and roads with turns tell more than the straightest.
 func TestRoadsOfAMap(t *testing.T) {
 	m := quillmere(t)
-	gyro, err := forecast.Roads(m, suiteOf(t, carSuite), forecast.WholeOptions{})
+	gyro, err := forecast.Roads(m, suiteOf(t, study.CarSuite), forecast.WholeOptions{})
 	if err != nil {
 		t.Fatal(err)
 	}
-	compass, err := forecast.Roads(m, suiteOf(t, carSuite+"  - {name: compass, kind: heading, noise: {sigma_deg: 3}}\n"), forecast.WholeOptions{})
+	compass, err := forecast.Roads(m, suiteOf(t, study.CarSuite+"  - {name: compass, kind: heading, noise: {sigma_deg: 3}}\n"), forecast.WholeOptions{})
 	if err != nil {
 		t.Fatal(err)
 	}
