@@ -77,7 +77,7 @@ func (p *partition) publish(ctx context.Context, next *pack) (sequence uint64, e
 	for try := 1; ; try++ {
 		b := p.j.broker.Load()
 		call, cancel := context.WithTimeout(ctx, callTimeout)
-		ack, err := b.js.PublishMsg(call, &nats.Msg{Subject: p.subject, Data: p.buf},
+		ack, err := b.js.PublishMsg(call, &nats.Msg{Subject: p.subject, Data: p.buf, Header: nats.Header{writerHeader: {p.j.writer}}},
 			jetstream.WithExpectLastSequencePerSubject(p.last), jetstream.WithRetryAttempts(0))
 		cancel()
 		if err == nil {
@@ -120,15 +120,26 @@ func noRoom(err error) bool {
 	return false
 }
 
+const shortestWait = 20 * time.Millisecond
+
+// writerHeader of a message names the journal that wrote it: two that take a
+// partition over at once would give their packs the same numbers.
+const writerHeader = "Leadline-Writer"
+
 // settle finds out whether a pack is in: with its sequence if it is, 0 if it is
 // not. It asks until the broker answers.
 func (p *partition) settle(ctx context.Context, next *pack, why error) (sequence uint64, err error) {
-	for wait := 20 * time.Millisecond; ; wait = min(2*wait, time.Second) {
-		last, number, epoch, err := p.lastAtBroker(ctx)
+	var api *jetstream.APIError
+	outOfDate := errors.As(why, &api) && api.ErrorCode == jetstream.JSErrCodeStreamWrongLastSequence
+	for wait := shortestWait; ; wait = min(2*wait, time.Second) {
+		last, number, epoch, writer, err := p.lastAtBroker(ctx)
 		switch {
+		case err == nil && last == p.last && outOfDate && wait < time.Second:
+			// It has refused the pack since something is in, and whoever answered may not
+			// know of it yet: of several brokers one is behind.
 		case err == nil && last == p.last:
 			return 0, nil
-		case err == nil && number == next.number && epoch == next.epoch:
+		case err == nil && number == next.number && epoch == next.epoch && writer == p.j.writer:
 			return last, nil
 		case err == nil && last > p.last:
 			return 0, fmt.Errorf("%w: pack %d of epoch %d is in partition %d, and this one's is %d of %d", ErrTaken, number, epoch, p.index+1, next.number, next.epoch)
@@ -157,25 +168,25 @@ func (p *partition) fallDown(why error) {
 }
 
 // lastAtBroker is the last pack of the partition; 0 if there is none.
-func (p *partition) lastAtBroker(ctx context.Context) (sequence, number, epoch uint64, err error) {
+func (p *partition) lastAtBroker(ctx context.Context) (sequence, number, epoch uint64, writer string, err error) {
 	ctx, cancel := context.WithTimeout(ctx, callTimeout)
 	defer cancel()
 	st, err := p.j.stream(ctx)
 	if err != nil {
-		return 0, 0, 0, err
+		return 0, 0, 0, "", err
 	}
 	m, err := st.GetLastMsgForSubject(ctx, p.subject)
 	if errors.Is(err, jetstream.ErrMsgNotFound) {
-		return 0, 0, 0, nil
+		return 0, 0, 0, "", nil
 	}
 	if err != nil {
-		return 0, 0, 0, err
+		return 0, 0, 0, "", err
 	}
 	var last pack
 	if err := last.read(m.Data); err != nil {
-		return 0, 0, 0, fmt.Errorf("pack at sequence %d: %w", m.Sequence, err)
+		return 0, 0, 0, "", fmt.Errorf("pack at sequence %d: %w", m.Sequence, err)
 	}
-	return m.Sequence, last.number, last.epoch, nil
+	return m.Sequence, last.number, last.epoch, m.Header.Get(writerHeader), nil
 }
 
 // revive starts a broker within this process again that has given up, once

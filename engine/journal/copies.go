@@ -23,7 +23,8 @@ func (r *reader) copies(ctx context.Context, st jetstream.Stream) error {
 		}
 		return m.Data, m.Time, nil
 	}
-	for i, p := range r.j.parts {
+	for _, p := range r.of {
+		i := p.index
 		cfg := jetstream.OrderedConsumerConfig{DeliverPolicy: jetstream.DeliverAllPolicy, FilterSubjects: []string{copySubject(i)}}
 		err := messages(ctx, st, cfg, func(m message) error {
 			var c pack
@@ -31,7 +32,7 @@ func (r *reader) copies(ctx context.Context, st jetstream.Stream) error {
 				return fmt.Errorf("journal: message %d, which stands for a pack of partition %d, is damaged: %w", m.sequence, i+1, err)
 			}
 			if old, ok := p.copies[c.number]; ok {
-				r.j.stale = append(r.j.stale, old)
+				r.stale = append(r.stale, old)
 			}
 			p.copies[c.number] = m.sequence
 			return nil
@@ -53,7 +54,7 @@ func (r *reader) copies(ctx context.Context, st jetstream.Stream) error {
 		}
 		for number, sequence := range p.copies {
 			if number < end.first {
-				r.j.stale = append(r.j.stale, sequence)
+				r.stale = append(r.stale, sequence)
 				delete(p.copies, number)
 			}
 		}

@@ -2,6 +2,7 @@ package journal
 
 import (
 	"context"
+	"crypto/rand"
 	"errors"
 	"fmt"
 	"hash/fnv"
@@ -31,10 +32,13 @@ var (
 // Journal is one that is open. Its methods may be called from any goroutine.
 type Journal struct {
 	o     Options
-	epoch uint64
-	parts []*partition
 	lock  *os.File
 	marks *marks
+	// writer tells this journal's packs from those of others at the broker.
+	writer string
+
+	mu    sync.RWMutex
+	parts []*partition // of a shared journal those that are not its own are nil
 
 	broker atomic.Pointer[broker]
 	reopen sync.Mutex // held while a broker within is started again
@@ -45,7 +49,6 @@ type Journal struct {
 	refused atomic.Uint64
 	room    room
 	sweep   sync.Mutex // held while packs are let go or replaced
-	stale   []uint64   // sequences of packs whose copies are in, found by Open
 
 	ended context.Context // done when the journal is closed
 	end   context.CancelFunc
@@ -54,13 +57,14 @@ type Journal struct {
 
 // Open opens a journal, or makes one, reads all that it holds, and takes it
 // over: whoever wrote it until then has ErrTaken. take is given each record, in
-// the order of its line; it must not keep the data, and its error ends Open.
+// the order of its line; it must not keep the data, and its error ends Open. Of a
+// shared journal nothing is read or taken over: see Take.
 func Open(ctx context.Context, o Options, take func(Record) error) (*Journal, *Found, error) {
 	if err := o.Validate(); err != nil {
 		return nil, nil, err
 	}
 	o = o.withDefaults()
-	j := &Journal{o: o}
+	j := &Journal{o: o, writer: rand.Text()}
 	j.ended, j.end = context.WithCancel(context.Background())
 	fail := func(err error) (*Journal, *Found, error) {
 		j.end()
@@ -100,49 +104,119 @@ func Open(ctx context.Context, o Options, take func(Record) error) (*Journal, *F
 			return fail(fmt.Errorf("journal: %w", err))
 		}
 	}
-	for i := range n {
-		j.parts = append(j.parts, newPartition(j, i))
-	}
+	j.parts = make([]*partition, n)
 	j.bytes.Store(int64(info.State.Bytes))
-	found, err := j.read(ctx, st, info, take)
-	if err != nil {
-		return fail(err)
-	}
-	if err := j.takeOver(ctx); err != nil {
-		return fail(err)
-	}
-	for _, sequence := range j.stale { // an erasure was interrupted
-		if err := st.SecureDeleteMsg(ctx, sequence); err != nil {
-			return fail(fmt.Errorf("journal: erasing message %d: %w", sequence, err))
+	found := new(Found)
+	if !o.Shared {
+		all := make([]*partition, n)
+		for i := range all {
+			all[i] = newPartition(j, i)
 		}
-	}
-	for _, p := range j.parts {
-		j.tasks.Go(p.run)
+		if found, err = j.takeAll(ctx, st, info, all, take); err != nil {
+			return fail(err)
+		}
 	}
 	j.tasks.Go(j.keep)
 	return j, found, nil
 }
 
-// takeOver writes an empty pack of a new epoch to each partition.
-func (j *Journal) takeOver(ctx context.Context) error {
-	for _, p := range j.parts {
-		p.pack.epoch = j.epoch
+// takeAll reads partitions, writes an empty pack of a new epoch to each, and begins
+// to commit to them.
+func (j *Journal) takeAll(ctx context.Context, st jetstream.Stream, info *jetstream.StreamInfo, ps []*partition, take func(Record) error) (*Found, error) {
+	found, stale, err := j.read(ctx, st, info, ps, take)
+	if err != nil {
+		return nil, err
+	}
+	var epoch uint64
+	for _, p := range ps {
+		epoch = max(epoch, p.pack.epoch+1)
+	}
+	for _, p := range ps {
+		p.pack.epoch = epoch
 		if err := p.commit(ctx, nil); err != nil {
-			return fmt.Errorf("journal: partition %d of %d: %w", p.index+1, len(j.parts), err)
+			return nil, fmt.Errorf("journal: partition %d of %d: %w", p.index+1, len(j.parts), err)
 		}
 	}
-	return nil
+	for _, sequence := range stale { // an erasure was interrupted
+		if err := st.SecureDeleteMsg(ctx, sequence); err != nil && !errors.Is(err, jetstream.ErrMsgNotFound) {
+			return nil, fmt.Errorf("journal: erasing message %d: %w", sequence, err)
+		}
+	}
+	j.mu.Lock()
+	defer j.mu.Unlock()
+	for _, p := range ps {
+		j.parts[p.index] = p
+		j.tasks.Go(p.run)
+	}
+	return found, nil
+}
+
+// Take reads one partition of a shared journal and takes it over, as Open does with
+// all of one that is not shared. Whoever writes it meanwhile may be in the way
+// (ErrTaken): it may be taken later.
+func (j *Journal) Take(ctx context.Context, index int, take func(Record) error) (*Found, error) {
+	if j.part(index) != nil {
+		panic("journal: a partition is taken twice")
+	}
+	st, err := j.stream(ctx)
+	if err != nil {
+		return nil, fmt.Errorf("%w: %w", ErrDown, err)
+	}
+	p := newPartition(j, index)
+	found, err := j.takeAll(ctx, st, st.CachedInfo(), []*partition{p}, take)
+	if err != nil {
+		p.cancel()
+	}
+	return found, err
+}
+
+// Give lets a partition of a shared journal go: what waits is committed until ctx
+// is done, and what is not then has ErrClosed, as all has that comes later.
+func (j *Journal) Give(ctx context.Context, index int) {
+	j.mu.Lock()
+	p := j.parts[index]
+	j.parts[index] = nil
+	j.mu.Unlock()
+	if p == nil {
+		return
+	}
+	p.close()
+	select {
+	case <-p.idle:
+	case <-ctx.Done():
+	}
+	p.cancel()
+	<-p.idle
+}
+
+// part is a partition, nil if it is not this journal's; own are all that are.
+func (j *Journal) part(i int) *partition {
+	j.mu.RLock()
+	defer j.mu.RUnlock()
+	return j.parts[i]
+}
+
+func (j *Journal) own() (ps []*partition) {
+	j.mu.RLock()
+	defer j.mu.RUnlock()
+	for _, p := range j.parts {
+		if p != nil {
+			ps = append(ps, p)
+		}
+	}
+	return ps
 }
 
 // Close commits what waits and closes the journal; what cannot be committed
 // within a while has ErrClosed.
 func (j *Journal) Close() error {
-	for _, p := range j.parts {
+	own := j.own()
+	for _, p := range own {
 		p.close()
 	}
 	idle := make(chan struct{})
 	go func() {
-		for _, p := range j.parts {
+		for _, p := range own {
 			<-p.idle
 		}
 		close(idle)
@@ -168,11 +242,14 @@ func (j *Journal) unlock() {
 	}
 }
 
-// of is the partition of a key.
-func (j *Journal) of(key string) *partition {
+// Partitions is how many there are, Partition which one a key's lines are in.
+func (j *Journal) Partitions() int { return len(j.parts) }
+
+// Partition is that of a key.
+func (j *Journal) Partition(key string) int {
 	h := fnv.New64a()
 	h.Write([]byte(key))
-	return j.parts[mix(h.Sum64())%uint64(len(j.parts))]
+	return int(mix(h.Sum64()) % uint64(len(j.parts)))
 }
 
 // mix spreads the bits of a hash: the low ones of FNV-1a know only the low bits
@@ -184,9 +261,12 @@ func mix(x uint64) uint64 {
 }
 
 // Begin begins a line. Those of one key are in one partition, in the order in
-// which they began.
+// which they began. It is nil where the partition is not this journal's.
 func (j *Journal) Begin(key string) *Line {
-	p := j.of(key)
+	p := j.part(j.Partition(key))
+	if p == nil {
+		return nil
+	}
 	p.mu.Lock()
 	defer p.mu.Unlock()
 	p.pack.lines++
@@ -197,7 +277,10 @@ func (j *Journal) Begin(key string) *Line {
 
 // Line returns a line that Open found; nil if there is none.
 func (j *Journal) Line(at Place) *Line {
-	p := j.parts[at.Partition]
+	p := j.part(at.Partition)
+	if p == nil {
+		return nil
+	}
 	p.mu.Lock()
 	defer p.mu.Unlock()
 	return p.lines[at.Line]
@@ -207,9 +290,10 @@ func (j *Journal) Line(at Place) *Line {
 type State struct {
 	// Where is the folder or the broker.
 	Where string
-	// Epoch counts how often it was opened.
-	Epoch      uint64
-	Partitions int
+	// Epoch counts how often it was opened; of a shared one, the greatest that its
+	// partitions have here. Own is how many of the partitions are this server's.
+	Epoch           uint64
+	Partitions, Own int
 	// Bytes is what it takes, MaxBytes what it may, FreeBytes what is free on
 	// its disk (-1: not known), LeaveBytes what is to be left free.
 	Bytes, MaxBytes, FreeBytes, LeaveBytes int64
@@ -230,7 +314,7 @@ type State struct {
 // State tells how the journal is doing.
 func (j *Journal) State() State {
 	s := State{
-		Where: j.o.Dir, Epoch: j.epoch, Partitions: len(j.parts),
+		Where: j.o.Dir, Partitions: len(j.parts),
 		Bytes: j.bytes.Load(), MaxBytes: j.o.MaxBytes, FreeBytes: -1, LeaveBytes: j.o.FreeBytes,
 		MaxAge: j.o.MaxAge, Records: j.records.Load(), Commits: j.commits.Load(), Refused: j.refused.Load(),
 	}
@@ -239,8 +323,10 @@ func (j *Journal) State() State {
 	} else if free, err := freeBytes(j.o.Dir); err == nil {
 		s.FreeBytes = free
 	}
-	for _, p := range j.parts {
+	for _, p := range j.own() {
 		p.mu.Lock()
+		s.Own++
+		s.Epoch = max(s.Epoch, p.pack.epoch)
 		s.Waiting += len(p.queue) + p.taken
 		s.Lines += len(p.lines)
 		if len(p.places) > 0 && p.pack.number > p.places[0].number && (s.Oldest.IsZero() || p.places[0].at.Before(s.Oldest)) {

@@ -112,7 +112,7 @@ func (j *Journal) tidy(ctx context.Context) error {
 		return nil // something is being erased, which makes no less room
 	}
 	defer j.sweep.Unlock()
-	for _, p := range j.parts {
+	for _, p := range j.own() {
 		if err := j.drop(call, p, until); err != nil {
 			return fmt.Errorf("partition %d: %w", p.index+1, err)
 		}
@@ -132,7 +132,7 @@ func (j *Journal) age(ctx context.Context, now time.Time) error {
 	defer j.sweep.Unlock()
 	call, cancel := context.WithTimeout(ctx, callTimeout)
 	defer cancel()
-	for _, p := range j.parts {
+	for _, p := range j.own() {
 		p.mu.Lock()
 		quiet := p.pack.number > p.pack.first && now.Sub(p.written) >= j.o.MaxAge/ages
 		var until uint64

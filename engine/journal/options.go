@@ -27,6 +27,11 @@ type Options struct {
 	// Partitions is in how many the lines are divided, of a journal that is new.
 	// Default 4.
 	Partitions int
+	// Shared has several servers write one journal at a broker, each the partitions
+	// that it takes (Journal.Take). Lost, if set, is told from another goroutine of a
+	// partition that another server writes now.
+	Shared bool
+	Lost   func(partition int)
 	// Log takes what the operator should know; nil is nothing.
 	Log *slog.Logger
 }
@@ -97,6 +102,9 @@ func (o *Options) Validate() error {
 		if u, err := url.Parse(b.URL); err != nil || u.Host == "" {
 			add("%q is no broker's address: give nats://HOST:PORT", b.URL)
 		}
+	}
+	if o.Shared && o.Dir != "" {
+		add("a folder (%s) is one server's: give a broker that servers can share", o.Dir)
 	}
 	if (b.Certificate == "") != (b.Key == "") {
 		add("of certificate and key only one is given: give both")

@@ -2,6 +2,7 @@ package journal
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"sync"
 	"time"
@@ -28,6 +29,10 @@ type partition struct {
 	// for those from which something was erased, by their number.
 	written time.Time
 	copies  map[uint64]uint64
+
+	// done when it is given up, or the journal is closed.
+	ended  context.Context
+	cancel context.CancelFunc
 
 	// Of the committer.
 	last uint64 // the broker's sequence of the last pack
@@ -57,10 +62,12 @@ const indexEvery = 16
 const maxQueued = 64 << 20
 
 func newPartition(j *Journal, i int) *partition {
-	return &partition{
+	p := &partition{
 		j: j, index: i, subject: subject(i), lines: map[uint64]*Line{}, copies: map[uint64]uint64{},
 		wake: make(chan struct{}, 1), idle: make(chan struct{}), pack: pack{first: 1},
 	}
+	p.ended, p.cancel = context.WithCancel(j.ended)
+	return p
 }
 
 func (p *partition) append(l *Line, kind byte, data []byte, urgent bool, done func(At, error)) {
@@ -149,7 +156,7 @@ func (p *partition) run() {
 			}
 			select {
 			case <-p.wake:
-			case <-p.j.ended.Done():
+			case <-p.ended.Done():
 				p.close()
 			}
 			continue
@@ -212,7 +219,10 @@ func (p *partition) serve(batch []waiting) {
 		p.settled(nil, 0)
 		return
 	}
-	if err := p.commit(p.j.ended, kept); err != nil {
+	if err := p.commit(p.ended, kept); err != nil {
+		if lost := p.j.o.Lost; lost != nil && errors.Is(err, ErrTaken) {
+			go lost(p.index)
+		}
 		broken := map[*Line]error{}
 		for _, w := range kept {
 			if w.line != nil {

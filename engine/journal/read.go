@@ -42,6 +42,8 @@ func purgeBefore(subject string, sequence uint64) []jetstream.StreamPurgeOpt {
 // reader takes the packs of a journal in order.
 type reader struct {
 	j     *Journal
+	of    []*partition // that are read
+	stale []uint64
 	fetch func(sequence uint64) ([]byte, time.Time, error) // a message at the broker
 	take  func(Record) error
 	found Found
@@ -64,24 +66,30 @@ type lineRead struct {
 	data   []byte
 }
 
-// read reads all that is in the stream.
-func (j *Journal) read(ctx context.Context, st jetstream.Stream, info *jetstream.StreamInfo, take func(Record) error) (*Found, error) {
-	r := &reader{j: j, take: take, parts: make([]reading, len(j.parts))}
+// read reads all that the stream has of partitions, and returns the sequences of
+// packs whose copies are in, too.
+func (j *Journal) read(ctx context.Context, st jetstream.Stream, info *jetstream.StreamInfo, ps []*partition, take func(Record) error) (found *Found, stale []uint64, err error) {
+	r := &reader{j: j, of: ps, take: take, parts: make([]reading, len(j.parts))}
 	for i := range r.parts {
 		r.parts[i].lines = map[uint64]*lineRead{}
 	}
 	r.found.Bytes = int64(info.State.Bytes)
 	if info.State.Msgs > 0 {
 		if err := r.copies(ctx, st); err != nil {
-			return nil, err
+			return nil, nil, err
 		}
-		if err := messages(ctx, st, jetstream.OrderedConsumerConfig{DeliverPolicy: jetstream.DeliverAllPolicy}, r.message); err != nil {
-			return nil, err
+		cfg := jetstream.OrderedConsumerConfig{DeliverPolicy: jetstream.DeliverAllPolicy}
+		if len(ps) < len(j.parts) {
+			for _, p := range ps {
+				cfg.FilterSubjects = append(cfg.FilterSubjects, p.subject)
+			}
+		}
+		if err := messages(ctx, st, cfg, r.message); err != nil {
+			return nil, nil, err
 		}
 	}
-	j.epoch = 0
-	for i, p := range j.parts {
-		j.epoch = max(j.epoch, p.pack.epoch)
+	for _, p := range ps {
+		i := p.index
 		rd := &r.parts[i]
 		if rd.from > rd.first {
 			r.lost(i, rd.first, rd.from-1)
@@ -96,8 +104,7 @@ func (j *Journal) read(ctx context.Context, st jetstream.Stream, info *jetstream
 			p.pack.number = m.found[i]
 		}
 	}
-	j.epoch++
-	return &r.found, nil
+	return &r.found, r.stale, nil
 }
 
 func (r *reader) damaged(d Damage) {
@@ -160,7 +167,8 @@ func messages(ctx context.Context, st jetstream.Stream, cfg jetstream.OrderedCon
 }
 
 func (r *reader) message(m message) error {
-	for i, p := range r.j.parts {
+	for _, p := range r.of {
+		i := p.index
 		switch m.subject {
 		case copySubject(i):
 			return nil // taken in the place of the one that it stands for
@@ -184,7 +192,7 @@ func (r *reader) pack(i int, p *partition, m message) error {
 		return nil
 	}
 	if c, ok := p.copies[next.number]; ok && c != m.sequence {
-		r.j.stale = append(r.j.stale, m.sequence)
+		r.stale = append(r.stale, m.sequence)
 		return r.copied(i, p, next.number)
 	}
 	for _, number := range r.between(p, next.number) {
