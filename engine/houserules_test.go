@@ -46,11 +46,12 @@ var mayImport = map[string][]string{
 	"engine/server": {
 		"engine/session", "engine/traffic", "engine/sensor", "engine/summary", "engine/monitor",
 		"engine/filter", "engine/geo", "engine/journal", "engine/wire", "engine/server/web", "engine/server/identity", "engine/server/operate",
-		"engine/study/forecast", api,
+		"engine/server/share", "engine/study/forecast", api,
 	},
 	"engine/server/web":      {api},
 	"engine/server/identity": {},
 	"engine/server/operate":  {},
+	"engine/server/share":    {},
 	"engine/client":          {api},
 	"engine/logfile":         {"engine/sensor", "engine/geo"},
 	"engine/livelog":         {"engine/logfile"},

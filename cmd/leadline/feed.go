@@ -92,7 +92,7 @@ func feed(c *cobra.Command, o *feedOptions, path string) error {
 	if flag := onlyOf(c, liveFlags); flag != "" {
 		return fmt.Errorf("--%s is for instruments: %s is a recorded drive, whose header says it", flag, path)
 	}
-	if err := checkAddress("--to", o.address); err != nil {
+	if err := checkAddresses("--to", o.address); err != nil {
 		return err
 	}
 	d, err := readDrive(path)
@@ -225,6 +225,16 @@ func refusalError(r *leadlinev1.Refusal) error {
 func checkAddress(flag, address string) error {
 	if _, port, err := net.SplitHostPort(address); err != nil || port == "" {
 		return fmt.Errorf("%s %s is no address: give HOST:PORT, such as %s", flag, address, defaultAddress)
+	}
+	return nil
+}
+
+// checkAddresses wants one of those, or several with commas.
+func checkAddresses(flag, addresses string) error {
+	for _, a := range strings.Split(addresses, ",") {
+		if err := checkAddress(flag, strings.TrimSpace(a)); err != nil {
+			return err
+		}
 	}
 	return nil
 }

@@ -59,7 +59,7 @@ func (o *feedOptions) live(c *cobra.Command, from string) error {
 	if flag := onlyOf(c, recordedFlags); flag != "" {
 		return fmt.Errorf("--%s is for recorded drives: %s speaks as it does", flag, from)
 	}
-	if err := checkAddress("--to", o.address); err != nil {
+	if err := checkAddresses("--to", o.address); err != nil {
 		return err
 	}
 	source, err := livelog.Parse(from)

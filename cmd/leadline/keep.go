@@ -6,12 +6,16 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"net"
 	"os"
 	"time"
 
 	"github.com/spf13/cobra"
+	"google.golang.org/grpc"
 
+	"leadline/engine/client"
 	"leadline/engine/journal"
+	"leadline/engine/server"
 )
 
 // keepOptions say where a server keeps what is to be durable.
@@ -21,7 +25,14 @@ type keepOptions struct {
 	// In MiB.
 	mostMiB, freeMiB int64
 	keepFor          time.Duration
+	// How the journal is shared with other servers.
+	shareAt, shareAuthority string
+	partitions              int
 }
+
+// defaultShared is in how many partitions a journal is divided that servers share:
+// enough that a handful of them have about the same.
+const defaultShared = 64
 
 // flags adds the options' flags.
 func (o *keepOptions) flags(c *cobra.Command) {
@@ -36,7 +47,10 @@ func (o *keepOptions) flags(c *cobra.Command) {
 	f.Int64Var(&o.mostMiB, "journal-mib", 4096, "greatest size of the journal, MiB; old records that no drive needs go first")
 	f.Int64Var(&o.freeMiB, "journal-free-mib", 256, "what is left free on the disk of --data, MiB: with less, new measurements are refused")
 	f.DurationVar(&o.keepFor, "keep-for", 720*time.Hour, "for how long what was measured is kept at most, and drives that are silent; 0 is without end")
-	settable(c, "keep-for", "data", "broker", "broker-credentials", "broker-authority", "broker-certificate", "broker-key", "broker-replicas", "journal-mib", "journal-free-mib")
+	f.StringVar(&o.shareAt, "share", "", "share the broker's journal with other servers, which reach this one at HOST:PORT: each serves a part of the vehicles")
+	f.StringVar(&o.shareAuthority, "share-authority", "", "file with the certificates that sign those of the other servers (default: the system's)")
+	f.IntVar(&o.partitions, "partitions", 0, "in how many parts the vehicles are divided, of a journal that is new: 4, or 64 to share")
+	settable(c, "share", "share-authority", "partitions", "keep-for", "data", "broker", "broker-credentials", "broker-authority", "broker-certificate", "broker-key", "broker-replicas", "journal-mib", "journal-free-mib")
 }
 
 // options are those of the journal; nil where nothing is kept.
@@ -46,6 +60,9 @@ func (o *keepOptions) options() (*journal.Options, error) {
 	}
 	if o.data == "" && o.broker.URL == "" {
 		b := o.broker
+		if o.shareAt != "" {
+			return nil, errors.New("--share is given and no broker: give --broker nats://HOST:PORT, whose journal is shared")
+		}
 		if b.Replicas = 0; b != (journal.Broker{}) {
 			return nil, errors.New("something is said of a broker and none is given: give --broker nats://HOST:PORT")
 		}
@@ -60,11 +77,28 @@ func (o *keepOptions) options() (*journal.Options, error) {
 	if o.freeMiB < 1 || o.freeMiB > 1<<40 {
 		return nil, fmt.Errorf("--journal-free-mib is %d: give 1 or more", o.freeMiB)
 	}
-	out := &journal.Options{Dir: o.data, MaxBytes: o.mostMiB << 20, FreeBytes: o.freeMiB << 20}
+	out := &journal.Options{Dir: o.data, MaxBytes: o.mostMiB << 20, FreeBytes: o.freeMiB << 20, Partitions: o.partitions}
 	if o.data == "" {
 		out.Broker = o.broker
 	}
+	if o.shareAt != "" {
+		if host, port, err := net.SplitHostPort(o.shareAt); err != nil || host == "" || port == "" {
+			return nil, fmt.Errorf("--share %s: give HOST:PORT, at which the other servers reach this one", o.shareAt)
+		}
+		if out.Shared = true; out.Partitions == 0 {
+			out.Partitions = defaultShared
+		}
+	}
 	return out, out.Validate()
+}
+
+// share is how the server shares its journal; nil if it does not.
+func (o *keepOptions) share(encrypted bool) *server.Share {
+	if o.shareAt == "" {
+		return nil
+	}
+	how := client.Security{Encrypted: encrypted, AuthorityFile: o.shareAuthority}
+	return &server.Share{Address: o.shareAt, Dial: func(address string) (*grpc.ClientConn, error) { return client.DialSecure(address, how) }}
 }
 
 // buildIdentity is the SHA-256 of the program's file: another one may compute

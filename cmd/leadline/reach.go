@@ -39,7 +39,7 @@ func (r *reach) addressFlag(c *cobra.Command, flag, address, usage string) {
 
 // dial prepares a connection to the server.
 func (r *reach) dial() (*grpc.ClientConn, error) {
-	if err := checkAddress(r.flag, r.address); err != nil {
+	if err := checkAddresses(r.flag, r.address); err != nil {
 		return nil, err
 	}
 	conn, err := client.DialSecure(r.address, r.security)

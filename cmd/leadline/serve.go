@@ -127,6 +127,7 @@ func (o *serveOptions) config() (cfg *server.Config, closeMaps func(), err error
 	if cfg.Journal, err = o.keep.options(); err != nil {
 		return cfg, closeMaps, err
 	}
+	cfg.Share = o.keep.share(o.encrypts())
 	if o.uploads != "" {
 		cfg.Uploads = uploadsTo(o.uploads)
 		cfg.Uploads.MaxBytes = int64(o.mapMiB) << 20

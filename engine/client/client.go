@@ -39,7 +39,8 @@ const (
 // maxMessage bounds a reply; a posterior with its largest regions takes less.
 const maxMessage = 16 << 20
 
-// Dial prepares a connection to host:port, in the clear. Nothing is sent
+// Dial prepares a connection to host:port, in the clear; of several with commas
+// between them, whichever answers, and another one when that is gone. Nothing is sent
 // before the first call, so an address where nobody listens is an error there.
 // DialSecure encrypts, and says who calls.
 func Dial(target string) (*grpc.ClientConn, error) { return DialSecure(target, Security{}) }

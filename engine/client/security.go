@@ -6,13 +6,17 @@ import (
 	"crypto/x509"
 	"errors"
 	"fmt"
+	mathrand "math/rand/v2"
 	"net"
 	"os"
+	"slices"
 	"strings"
 
 	"google.golang.org/grpc"
 	"google.golang.org/grpc/credentials"
 	"google.golang.org/grpc/credentials/insecure"
+	"google.golang.org/grpc/resolver"
+	"google.golang.org/grpc/resolver/manual"
 )
 
 // Security is how a server is reached and who calls it. The zero value is plain
@@ -41,6 +45,13 @@ func (s Security) encrypted() bool {
 // DialSecure prepares a connection to host:port as Dial does.
 func DialSecure(target string, s Security) (*grpc.ClientConn, error) {
 	options := dialOptions()
+	addresses := strings.Split(target, ",")
+	if len(addresses) > 1 {
+		r := manual.NewBuilderWithScheme("leadline")
+		r.InitialState(resolver.State{Addresses: inAnyOrder(addresses)})
+		options = append(options, grpc.WithResolvers(r))
+		target = r.Scheme() + ":///servers"
+	}
 	if !s.encrypted() {
 		options = append(options, grpc.WithTransportCredentials(insecure.NewCredentials()))
 	} else {
@@ -54,12 +65,26 @@ func DialSecure(target string, s Security) (*grpc.ClientConn, error) {
 		if _, err := readToken(s.TokenFile); err != nil {
 			return nil, err
 		}
-		if !s.encrypted() && !onThisMachine(target) {
+		if !s.encrypted() && slices.ContainsFunc(addresses, func(a string) bool { return !onThisMachine(a) }) {
 			return nil, errors.New("client: a token would go in the clear to another machine: ask for TLS")
 		}
 		options = append(options, grpc.WithPerRPCCredentials(tokenOf{s.TokenFile, s.encrypted()}))
 	}
 	return grpc.NewClient(target, options...)
+}
+
+// inAnyOrder are several servers' addresses, of which the first that answers is
+// used: each client begins with another one.
+func inAnyOrder(addresses []string) (out []resolver.Address) {
+	for _, i := range mathrand.Perm(len(addresses)) {
+		a := strings.TrimSpace(addresses[i])
+		name, _, err := net.SplitHostPort(a)
+		if err != nil {
+			name = a
+		}
+		out = append(out, resolver.Address{Addr: a, ServerName: name})
+	}
+	return out
 }
 
 func (s Security) config() (*tls.Config, error) {

@@ -46,25 +46,34 @@ func connect(o *Options) (*broker, error) {
 	if o.Dir != "" {
 		return startWithin(o)
 	}
-	opts := []nats.Option{nats.Name("leadline journal"), nats.MaxReconnects(-1), nats.ReconnectWait(200 * time.Millisecond), nats.Timeout(callTimeout)}
-	if f := o.Broker.Credentials; f != "" {
-		if _, err := os.Stat(f); err != nil {
-			return nil, fmt.Errorf("journal: credentials: %w", err)
-		}
-		opts = append(opts, nats.UserCredentials(f))
-	}
-	if f := o.Broker.Authority; f != "" {
-		opts = append(opts, nats.RootCAs(f))
-	}
-	if f := o.Broker.Certificate; f != "" {
-		opts = append(opts, nats.ClientCert(f, o.Broker.Key))
-	}
-	conn, err := nats.Connect(o.Broker.URL, opts...)
+	conn, err := o.Broker.Dial("leadline journal")
 	if err != nil {
-		return nil, fmt.Errorf("journal: broker %s: %w", o.Broker.address(), err)
+		return nil, fmt.Errorf("journal: %w", err)
 	}
 	b := &broker{conn: conn}
 	return b, b.open()
+}
+
+// Dial connects to the broker, which calls the connection by a name.
+func (b *Broker) Dial(name string) (*nats.Conn, error) {
+	opts := []nats.Option{nats.Name(name), nats.MaxReconnects(-1), nats.ReconnectWait(200 * time.Millisecond), nats.Timeout(callTimeout)}
+	if f := b.Credentials; f != "" {
+		if _, err := os.Stat(f); err != nil {
+			return nil, fmt.Errorf("credentials: %w", err)
+		}
+		opts = append(opts, nats.UserCredentials(f))
+	}
+	if f := b.Authority; f != "" {
+		opts = append(opts, nats.RootCAs(f))
+	}
+	if f := b.Certificate; f != "" {
+		opts = append(opts, nats.ClientCert(f, b.Key))
+	}
+	conn, err := nats.Connect(b.URL, opts...)
+	if err != nil {
+		return nil, fmt.Errorf("broker %s: %w", b.address(), err)
+	}
+	return conn, nil
 }
 
 // startWithin starts a broker that nobody outside this process can reach, and

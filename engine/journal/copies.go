@@ -81,5 +81,5 @@ func (r *reader) copied(i int, p *partition, number uint64) error {
 	if err != nil {
 		return err
 	}
-	return r.pack(i, p, message{copySubject(i), sequence, at, data})
+	return r.pack(i, p, message{subject: copySubject(i), sequence: sequence, at: at, data: data})
 }

@@ -105,7 +105,7 @@ func (e *eraser) find(ctx context.Context, st jetstream.Stream) error {
 		if err := k.read(m.Data); err != nil {
 			return fmt.Errorf("journal: reading message %d: %w", m.Sequence, err)
 		}
-		e.look(&k, message{m.Subject, m.Sequence, m.Time, m.Data})
+		e.look(&k, message{subject: m.Subject, sequence: m.Sequence, at: m.Time, data: m.Data})
 	}
 	return nil
 }

@@ -126,6 +126,7 @@ type message struct {
 	sequence uint64
 	at       time.Time
 	data     []byte
+	writer   string
 }
 
 // messages reads a stream's messages in their order.
@@ -157,7 +158,7 @@ func messages(ctx context.Context, st jetstream.Stream, cfg jetstream.OrderedCon
 		if err != nil {
 			return fmt.Errorf("journal: reading: %w", err)
 		}
-		if err := take(message{m.Subject(), meta.Sequence.Stream, meta.Timestamp, m.Data()}); err != nil {
+		if err := take(message{m.Subject(), meta.Sequence.Stream, meta.Timestamp, m.Data(), m.Headers().Get(writerHeader)}); err != nil {
 			return err
 		}
 		if meta.NumPending == 0 {

@@ -142,6 +142,14 @@ func (s *Server) SeeAlarm(ctx context.Context, req *leadlinev1.SeeAlarmRequest) 
 	b.mu.Lock()
 	defer b.mu.Unlock()
 	a := b.records[req.GetNumber()]
+	if a == nil && s.shared != nil && !forwarded(ctx) {
+		b.mu.Unlock()
+		found, err := s.seenElsewhere(ctx, req)
+		b.mu.Lock()
+		if found != nil || err != nil {
+			return found, err
+		}
+	}
 	if a == nil {
 		return nil, refuse(leadlinev1.Reason_REASON_UNKNOWN_ALARM, about{"field": "number"}, "there is no alarm of number %d on record: it was cleared long ago, or the server has been started anew", req.GetNumber())
 	}

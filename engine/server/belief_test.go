@@ -32,7 +32,7 @@ func decode(t *testing.T, m *leadlinev1.Belief) (cells []told) {
 			if b == 0 {
 				continue
 			}
-			u, v := share(i%int(g.GetColumns()), g.GetColumns()), share(i/int(g.GetColumns()), g.GetRows())
+			u, v := shareOf(i%int(g.GetColumns()), g.GetColumns()), shareOf(i/int(g.GetColumns()), g.GetRows())
 			at := func(of func(*leadlinev1.Position) float64) float64 {
 				return (1-v)*((1-u)*of(g.GetFirst())+u*of(g.GetFirstLast())) + v*((1-u)*of(g.GetLastFirst())+u*of(g.GetLast()))
 			}
@@ -54,7 +54,7 @@ func decode(t *testing.T, m *leadlinev1.Belief) (cells []told) {
 }
 
 // share is how far along a row of n the i-th is.
-func share(i int, n uint32) float64 {
+func shareOf(i int, n uint32) float64 {
 	if n == 1 {
 		return 0
 	}

@@ -37,6 +37,9 @@ type Config struct {
 	// Journal, if set, keeps what comes before it is acknowledged: its Log is
 	// this configuration's.
 	Journal *journal.Options
+	// Share, if set, has this server share its journal, which must be Shared, with
+	// others.
+	Share *Share
 	// KeepFor is for how long what was measured is kept at most: older records of
 	// the journal go, and drives that are silent for longer. 0 is without end.
 	KeepFor time.Duration
@@ -249,6 +252,9 @@ func (c *Config) Validate() error {
 	}
 	if c.Journal != nil {
 		errs = append(errs, c.Journal.Validate())
+	}
+	if c.Share != nil && (c.Journal == nil || !c.Journal.Shared || c.Share.Address == "" || c.Share.Dial == nil) {
+		errs = append(errs, errors.New("server: to share needs a journal that is shared, an address, and how to reach others"))
 	}
 	for _, f := range c.Limits.fields() {
 		if *f.v < 0 {

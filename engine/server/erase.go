@@ -69,6 +69,9 @@ func (s *Server) giveUp(vehicle string) (*owner, *journal.Line, error) {
 	if s.closed {
 		return nil, nil, errStopping
 	}
+	if !s.has(vehicle) {
+		return nil, nil, errMoved
+	}
 	s.ended.Add(1)
 	o := s.owners[vehicle]
 	if o != nil {

@@ -57,6 +57,7 @@ var reasonCodes = map[leadlinev1.Reason]codes.Code{
 	leadlinev1.Reason_REASON_JOURNAL_FULL:       codes.ResourceExhausted,
 	leadlinev1.Reason_REASON_JOURNAL_DOWN:       codes.Unavailable,
 	leadlinev1.Reason_REASON_JOURNAL_DAMAGED:    codes.DataLoss,
+	leadlinev1.Reason_REASON_RECOVERING:         codes.Unavailable,
 }
 
 // retryAfter is after how long a call may do that was refused for what passes: a
@@ -67,6 +68,7 @@ var retryAfter = map[leadlinev1.Reason]time.Duration{
 	leadlinev1.Reason_REASON_JOURNAL_DOWN:       time.Second,
 	leadlinev1.Reason_REASON_STOPPING:           time.Second,
 	leadlinev1.Reason_REASON_IDENTITY_UNCHECKED: 5 * time.Second,
+	leadlinev1.Reason_REASON_RECOVERING:         200 * time.Millisecond,
 }
 
 // about says what a failure is about, for programs: vehicle, drive, map, suite,

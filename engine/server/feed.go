@@ -9,6 +9,7 @@ import (
 	"google.golang.org/grpc"
 	"google.golang.org/grpc/status"
 
+	"leadline/engine/server/share"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
@@ -34,6 +35,12 @@ func (s *Server) Feed(stream feedStream) error {
 	open, err := s.first(ctx, requests)
 	if err != nil {
 		return err
+	}
+	if vehicle := open.GetHeader().GetVehicle(); vehicle != "" {
+		here, err := s.elsewhere(ctx, vehicle, func(at share.Server) (bool, error) { return s.forwardFeed(ctx, at, stream, open, requests) })
+		if !here || err != nil {
+			return err
+		}
 	}
 	o, err := s.open(ctx, open)
 	if err != nil {

@@ -27,7 +27,7 @@ const (
 
 // ListVehicles says who is here: see the .proto file. Pages go by name, so that
 // vehicles that come and go between two pages push no other out.
-func (s *Server) ListVehicles(_ context.Context, req *leadlinev1.ListVehiclesRequest) (*leadlinev1.ListVehiclesResponse, error) {
+func (s *Server) ListVehicles(ctx context.Context, req *leadlinev1.ListVehiclesRequest) (*leadlinev1.ListVehiclesResponse, error) {
 	size := cmp.Or(int(req.GetPageSize()), defaultPage)
 	if size > maxPage {
 		return nil, badField("page_size", "page_size %d: at most %d", size, maxPage)
@@ -39,13 +39,24 @@ func (s *Server) ListVehicles(_ context.Context, req *leadlinev1.ListVehiclesReq
 	if m := req.GetMap(); m != "" && len(s.atlas.describe(m)) == 0 {
 		return nil, s.unknownMap(m)
 	}
+	pages, err := fromAll(ctx, s, func(ctx context.Context, c leadlinev1.PositionServiceClient) (*leadlinev1.ListVehiclesResponse, error) {
+		return c.ListVehicles(ctx, req)
+	})
+	if err != nil {
+		return nil, err
+	}
+	return mergeVehicles(append(pages, s.listHere(req, string(after), size)), size), nil
+}
+
+// listHere is a page of the vehicles that this server has.
+func (s *Server) listHere(req *leadlinev1.ListVehiclesRequest, after string, size int) *leadlinev1.ListVehiclesResponse {
 	resp := &leadlinev1.ListVehiclesResponse{}
 	now := s.cfg.Now()
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	for _, name := range slices.Sorted(maps.Keys(s.owners)) {
 		o := s.owners[name]
-		if name <= string(after) || req.GetMap() != "" && o.m.Name != req.GetMap() {
+		if name <= after || req.GetMap() != "" && o.m.Name != req.GetMap() {
 			continue
 		}
 		if len(resp.GetVehicles()) == size {
@@ -54,7 +65,7 @@ func (s *Server) ListVehicles(_ context.Context, req *leadlinev1.ListVehiclesReq
 		}
 		resp.Vehicles = append(resp.Vehicles, o.describe(now))
 	}
-	return resp, nil
+	return resp
 }
 
 // describe says what is known of a vehicle without asking its session, which

@@ -29,6 +29,14 @@ const (
 
 // Follow tells of vehicles: see the .proto file.
 func (s *Server) Follow(req *leadlinev1.FollowRequest, stream grpc.ServerStreamingServer[leadlinev1.FollowResponse]) error {
+	if s.shared != nil && !forwarded(stream.Context()) {
+		return s.followAll(req, stream)
+	}
+	return s.followHere(req, stream)
+}
+
+// followHere tells of the vehicles that this server has.
+func (s *Server) followHere(req *leadlinev1.FollowRequest, stream grpc.ServerStreamingServer[leadlinev1.FollowResponse]) error {
 	f, reader, err := s.hub.follow(req)
 	if err != nil {
 		return err

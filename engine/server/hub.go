@@ -153,6 +153,20 @@ func (h *hub) forget(sub *subject) {
 	}
 }
 
+// moved takes out a drive that another server goes on with: those who follow it
+// hear of it from there.
+func (h *hub) moved(sub *subject) {
+	h.mu.Lock()
+	defer h.mu.Unlock()
+	sub.gone = true
+	if h.subjects[sub.vehicle] == sub {
+		delete(h.subjects, sub.vehicle)
+	}
+	for _, f := range h.followers(sub.vehicle) {
+		f.tidy(sub.vehicle)
+	}
+}
+
 // erase takes out what waits for followers of a drive that is gone; that it is
 // over they are told.
 func (h *hub) erase(sub *subject) {

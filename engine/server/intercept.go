@@ -19,7 +19,7 @@ func (s *Server) aroundUnary(ctx context.Context, req any, info *grpc.UnaryServe
 	if err := grpc.SetHeader(ctx, s.header()); err != nil {
 		return nil, err
 	}
-	return s.guardUnary(ctx, req, info.FullMethod, handle)
+	return s.guardUnary(ctx, req, info.FullMethod, s.routed(info.FullMethod, handle))
 }
 
 func (s *Server) aroundStream(srv any, stream grpc.ServerStream, info *grpc.StreamServerInfo, handle grpc.StreamHandler) error {

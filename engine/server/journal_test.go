@@ -64,8 +64,8 @@ func init() {
 	os.Exit(0)
 }
 
-// shared is a journal at a broker of its own, which others can reach, too.
-func shared(t *testing.T) *journal.Options {
+// atBroker is a journal at a broker of its own, which others can reach, too.
+func atBroker(t *testing.T) *journal.Options {
 	t.Helper()
 	cmd := exec.Command(os.Args[0])
 	cmd.Env = append(os.Environ(), brokerDir+"="+t.TempDir())
@@ -136,7 +136,7 @@ func TestRestart(t *testing.T) {
 	evs := voyage(3, 60)
 	const cells = 1000 // few cost little
 	want, _, times := replayedIn(t, cells, evs)
-	for _, o := range []*journal.Options{keptIn(t.TempDir()), shared(t)} {
+	for _, o := range []*journal.Options{keptIn(t.TempDir()), atBroker(t)} {
 		l := &life{t: t, cfg: Config{Journal: o, Build: "this", MaxCells: cells}}
 		rng := rand.New(rand.NewPCG(1, 2))
 		sent, starts := 0, 0

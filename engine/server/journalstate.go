@@ -19,6 +19,12 @@ func (s *Server) DescribeJournal(context.Context, *leadlinev1.DescribeJournalReq
 		Where: st.Where, Epoch: st.Epoch, Partitions: uint32(st.Partitions), Bytes: uint64(st.Bytes), MostBytes: uint64(st.MaxBytes),
 		Records: st.Records, Refused: st.Refused, Waiting: uint64(st.Waiting), KeepForS: st.MaxAge.Seconds(),
 	}
+	out.OwnPartitions = uint32(st.Own)
+	if s.shared != nil {
+		for _, other := range s.shared.Others() {
+			out.OtherServers = append(out.OtherServers, other.Address)
+		}
+	}
 	if st.FreeBytes >= 0 {
 		out.FreeBytes, out.LeaveBytes = proto.Uint64(uint64(st.FreeBytes)), proto.Uint64(uint64(st.LeaveBytes))
 	}

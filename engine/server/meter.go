@@ -46,6 +46,11 @@ func (s *Server) Ready() error {
 			return fmt.Errorf("no measurement is taken: %w", err)
 		}
 	}
+	if s.shared != nil {
+		if err := s.shared.ready(); err != nil {
+			return err
+		}
+	}
 	for _, name := range slices.Sorted(maps.Keys(s.cfg.Checks)) {
 		if err := s.cfg.Checks[name](); err != nil {
 			return fmt.Errorf("%s: %w", name, err)

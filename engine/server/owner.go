@@ -185,6 +185,14 @@ func (o *owner) run() {
 // leave tells those who follow and the log that the owner has stopped.
 func (o *owner) leave() {
 	why := status.Convert(o.err).Message()
+	if errors.Is(o.err, errMoved) || errors.Is(o.err, errLost) {
+		if errors.Is(o.err, errMoved) {
+			o.lastCheckpoint()
+		}
+		o.clearAlarms(why)
+		o.srv.hub.moved(o.subject)
+		return
+	}
 	if !o.ended {
 		o.farewell(false, "", why)
 		o.clearAlarms("the drive was dropped: " + why)

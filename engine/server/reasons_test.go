@@ -331,7 +331,7 @@ func wrongCalls(t *testing.T) []wrongCall {
 			return saidBy(err)
 		}},
 		{leadlinev1.Reason_REASON_JOURNAL_FULL, "drive vehicle", Config{Journal: crowded(t)}, open(func(*leadlinev1.Open) {})},
-		{leadlinev1.Reason_REASON_JOURNAL_DOWN, "drive vehicle", Config{Journal: shared(t)}, func(t *testing.T, s *Server, conn *grpc.ClientConn) said {
+		{leadlinev1.Reason_REASON_JOURNAL_DOWN, "drive vehicle", Config{Journal: atBroker(t)}, func(t *testing.T, s *Server, conn *grpc.ClientConn) said {
 			st, _ := openRaw(t, conn, d)
 			j, _, err := journal.Open(limited(t), *s.cfg.Journal, func(journal.Record) error { return nil })
 			if err != nil {
@@ -342,6 +342,10 @@ func wrongCalls(t *testing.T) []wrongCall {
 				t.Fatal(err)
 			}
 			return saidBy(ends(st))
+		}},
+		{leadlinev1.Reason_REASON_RECOVERING, "vehicle", sharing(t), func(t *testing.T, s *Server, conn *grpc.ClientConn) said {
+			_, err := leadlinev1.NewPositionServiceClient(conn).EndDrive(metadata.AppendToOutgoingContext(limited(t), forwardedHeader, "1"), &leadlinev1.EndDriveRequest{Vehicle: ofAnother(t, s)})
+			return saidBy(err)
 		}},
 		{leadlinev1.Reason_REASON_JOURNAL_DAMAGED, "drive vehicle", Config{}, open(func(o *leadlinev1.Open) { o.Acknowledged = 7 })},
 		{leadlinev1.Reason_REASON_JOURNAL_DAMAGED, "drive vehicle", Config{}, func(t *testing.T, s *Server, conn *grpc.ClientConn) said {

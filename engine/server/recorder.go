@@ -227,7 +227,7 @@ func (s *Server) record(o *owner, opened openedRecord) {
 		delete(s.kept, o.vehicle)
 		s.dropLine(s.journal.Line(k.place))
 	}
-	o.recordIn(s.journal.Begin(o.vehicle))
+	o.recordIn(s.journal.Begin(o.vehicle)) // it is this server's: resumeLocked has seen
 	o.recordOpening(opened)
 }
 

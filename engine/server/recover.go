@@ -108,11 +108,26 @@ func (s *Server) openJournal() error {
 	o := *s.cfg.Journal
 	o.Log = s.cfg.Log
 	o.MaxAge = s.cfg.KeepFor
+	if s.shared != nil {
+		o.Lost = s.lost
+	}
 	j, found, err := journal.Open(context.Background(), o, c.take)
 	if err != nil {
 		return err
 	}
 	s.journal = j
+	if err := s.goOnWith(c, found); err != nil {
+		return err
+	}
+	st := j.State()
+	s.cfg.Log.Info("journal opened", "where", st.Where, "epoch", st.Epoch, "partitions", st.Partitions, "records", found.Records, "bytes", found.Bytes,
+		"drives", len(s.owners), "kept", len(s.kept), "seconds", time.Since(began).Seconds())
+	return nil
+}
+
+// goOnWith goes on with what was read.
+func (s *Server) goOnWith(c *histories, found *journal.Found) error {
+	j := s.journal
 	newest := map[string]*history{}
 	var old []*history
 	for _, d := range found.Damage {
@@ -158,9 +173,6 @@ func (s *Server) openJournal() error {
 		}
 	}
 	s.restoreAll(newest)
-	st := j.State()
-	s.cfg.Log.Info("journal opened", "where", st.Where, "epoch", st.Epoch, "partitions", st.Partitions, "records", found.Records, "bytes", found.Bytes,
-		"drives", len(s.owners), "kept", len(s.kept), "seconds", time.Since(began).Seconds())
 	return nil
 }
 
@@ -203,6 +215,13 @@ func (s *Server) restore(h *history) {
 	o, err := s.revive(h)
 	s.mu.Lock()
 	defer s.mu.Unlock()
+	if s.closed { // while a partition is taken over
+		if err == nil {
+			s.hub.moved(o.subject)
+			s.releaseMap(o.m)
+		}
+		return
+	}
 	if err != nil {
 		s.cfg.Log.Error("drive cannot go on", "vehicle", h.vehicle(), "drive", h.open.GetDrive(), "error", err)
 		s.kept[h.vehicle()] = &kept{h, err}

@@ -115,6 +115,9 @@ func (s *Server) resumeLocked(req *leadlinev1.Open) (*owner, error) {
 	if s.closed {
 		return nil, errStopping
 	}
+	if !s.has(req.GetHeader().GetVehicle()) {
+		return nil, errMoved
+	}
 	o := s.owners[req.GetHeader().GetVehicle()]
 	switch {
 	case o == nil && s.kept[req.GetHeader().GetVehicle()] != nil && !req.GetReplace():

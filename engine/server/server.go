@@ -47,6 +47,7 @@ type Server struct {
 	alarms          *alarmBook
 	atlas           *atlas
 	journal         *journal.Journal // nil: nothing is durable
+	shared          *shared          // nil: with no other server
 	// uploads is nil where none are taken; uploading holds a token each.
 	uploads   *Uploads
 	uploading chan struct{}
@@ -137,11 +138,17 @@ func New(cfg Config) (*Server, error) {
 			return nil, err
 		}
 	}
+	if cfg.Share != nil {
+		s.shared = &shared{peers: peers{dial: cfg.Share.Dial, of: map[string]*grpc.ClientConn{}}}
+	}
 	if cfg.Journal != nil {
 		if err := s.openJournal(); err != nil {
 			return nil, err
 		}
 		s.meterJournal()
+	}
+	if s.shared != nil {
+		s.openShared()
 	}
 	_ = s.tellHealth()
 	cfg.Metrics.Watch(s.fleet)
@@ -151,6 +158,10 @@ func New(cfg Config) (*Server, error) {
 // Serve answers on a listener, which it closes, until Shutdown; then it
 // returns nil. HTTP/2 is taken for gRPC, all else for HTTP/1.1.
 func (s *Server) Serve(l net.Listener) error {
+	if err := s.join(); err != nil {
+		_ = l.Close()
+		return err
+	}
 	s.serving.Store(true)
 	_ = s.tellHealth()
 	var watching sync.WaitGroup
@@ -182,6 +193,7 @@ func (s *Server) Serve(l net.Listener) error {
 // Shutdown returns ctx's error.
 func (s *Server) Shutdown(ctx context.Context) error {
 	s.health.Shutdown()
+	s.retire(ctx)
 	s.drain.Do(func() { close(s.draining) })
 	done := make(chan struct{})
 	go func() {
@@ -208,11 +220,13 @@ func (s *Server) Shutdown(ctx context.Context) error {
 	}
 	s.stopOwners()
 	s.ended.Wait()
+	s.settled()
 	if s.journal != nil {
 		if closed := s.journal.Close(); closed != nil {
 			s.cfg.Log.Error("journal cannot be closed", "error", closed)
 		}
 	}
+	s.part()
 	if closed := s.atlas.close(); closed != nil {
 		s.cfg.Log.Error("map cannot be closed", "error", closed)
 	}

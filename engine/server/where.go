@@ -37,12 +37,13 @@ func (s *Server) Where(ctx context.Context, req *leadlinev1.WhereRequest) (*lead
 	}
 	vehicles := req.GetVehicles()
 	answers := make([]*leadlinev1.WhereAnswer, len(vehicles))
+	here := s.whereElsewhere(ctx, req, answers)
 	var next atomic.Int64
 	var wg sync.WaitGroup
-	for range min(askers, len(vehicles)) {
+	for range min(askers, len(here)) {
 		wg.Go(func() {
-			for i := next.Add(1) - 1; i < int64(len(vehicles)); i = next.Add(1) - 1 {
-				answers[i] = s.ask(ctx, vehicles[i], q)
+			for k := next.Add(1) - 1; k < int64(len(here)); k = next.Add(1) - 1 {
+				answers[here[k]] = s.ask(ctx, vehicles[here[k]], q)
 			}
 		})
 	}

@@ -548,7 +548,12 @@ type DescribeJournalResponse struct {
 	// For how long records are kept at most, s; 0 is without end.
 	KeepForS float64 `protobuf:"fixed64,12,opt,name=keep_for_s,json=keepForS,proto3" json:"keep_for_s,omitempty"`
 	// Why it takes no measurements now; empty if it does.
-	Failure       string `protobuf:"bytes,13,opt,name=failure,proto3" json:"failure,omitempty"`
+	Failure string `protobuf:"bytes,13,opt,name=failure,proto3" json:"failure,omitempty"`
+	// How many of the partitions this server serves: all, where it shares them with
+	// none.
+	OwnPartitions uint32 `protobuf:"varint,14,opt,name=own_partitions,json=ownPartitions,proto3" json:"own_partitions,omitempty"`
+	// The addresses of the other servers that share the journal now.
+	OtherServers  []string `protobuf:"bytes,15,rep,name=other_servers,json=otherServers,proto3" json:"other_servers,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -674,6 +679,20 @@ func (x *DescribeJournalResponse) GetFailure() string {
 	return ""
 }
 
+func (x *DescribeJournalResponse) GetOwnPartitions() uint32 {
+	if x != nil {
+		return x.OwnPartitions
+	}
+	return 0
+}
+
+func (x *DescribeJournalResponse) GetOtherServers() []string {
+	if x != nil {
+		return x.OtherServers
+	}
+	return nil
+}
+
 var File_leadline_v1_fleet_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_fleet_proto_rawDesc = "" +
@@ -711,7 +730,7 @@ const file_leadline_v1_fleet_proto_rawDesc = "" +
 	"\x14EraseVehicleResponse\x12\x16\n" +
 	"\x06drives\x18\x01 \x01(\rR\x06drives\x12\x18\n" +
 	"\arecords\x18\x02 \x01(\x04R\arecords\"\x18\n" +
-	"\x16DescribeJournalRequest\"\xbd\x03\n" +
+	"\x16DescribeJournalRequest\"\x89\x04\n" +
 	"\x17DescribeJournalResponse\x12\x14\n" +
 	"\x05where\x18\x01 \x01(\tR\x05where\x12\x14\n" +
 	"\x05epoch\x18\x02 \x01(\x04R\x05epoch\x12\x1e\n" +
@@ -732,7 +751,9 @@ const file_leadline_v1_fleet_proto_rawDesc = "" +
 	"\x06oldest\x18\v \x01(\v2\x1a.google.protobuf.TimestampR\x06oldest\x12\x1c\n" +
 	"\n" +
 	"keep_for_s\x18\f \x01(\x01R\bkeepForS\x12\x18\n" +
-	"\afailure\x18\r \x01(\tR\afailureB\r\n" +
+	"\afailure\x18\r \x01(\tR\afailure\x12%\n" +
+	"\x0eown_partitions\x18\x0e \x01(\rR\rownPartitions\x12#\n" +
+	"\rother_servers\x18\x0f \x03(\tR\fotherServersB\r\n" +
 	"\v_free_bytesB\x0e\n" +
 	"\f_leave_bytesB'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
 

@@ -121,6 +121,10 @@ const (
 	// Of the drive something is missing from the journal or cannot be read, as the
 	// message says: open another drive, with replace. DATA_LOSS.
 	Reason_REASON_JOURNAL_DAMAGED Reason = 52
+	// Of several servers that share a journal none serves the vehicle for the
+	// moment: one takes over what another one had, or cannot reach it. Call again,
+	// at any of them. UNAVAILABLE.
+	Reason_REASON_RECOVERING Reason = 53
 )
 
 // Enum value maps for Reason.
@@ -165,6 +169,7 @@ var (
 		50: "REASON_JOURNAL_FULL",
 		51: "REASON_JOURNAL_DOWN",
 		52: "REASON_JOURNAL_DAMAGED",
+		53: "REASON_RECOVERING",
 	}
 	Reason_value = map[string]int32{
 		"REASON_UNSPECIFIED":        0,
@@ -206,6 +211,7 @@ var (
 		"REASON_JOURNAL_FULL":       50,
 		"REASON_JOURNAL_DOWN":       51,
 		"REASON_JOURNAL_DAMAGED":    52,
+		"REASON_RECOVERING":         53,
 	}
 )
 
@@ -297,7 +303,7 @@ const file_leadline_v1_reason_proto_rawDesc = "" +
 	"\x18leadline/v1/reason.proto\x12\vleadline.v1\"P\n" +
 	"\aFailure\x12+\n" +
 	"\x06reason\x18\x01 \x01(\x0e2\x13.leadline.v1.ReasonR\x06reason\x12\x18\n" +
-	"\amessage\x18\x02 \x01(\tR\amessage*\xa9\a\n" +
+	"\amessage\x18\x02 \x01(\tR\amessage*\xc0\a\n" +
 	"\x06Reason\x12\x16\n" +
 	"\x12REASON_UNSPECIFIED\x10\x00\x12\x13\n" +
 	"\x0fREASON_UNUSABLE\x10\x01\x12\x16\n" +
@@ -337,7 +343,8 @@ const file_leadline_v1_reason_proto_rawDesc = "" +
 	"\rREASON_ERASED\x100\x12\x17\n" +
 	"\x13REASON_JOURNAL_FULL\x102\x12\x17\n" +
 	"\x13REASON_JOURNAL_DOWN\x103\x12\x1a\n" +
-	"\x16REASON_JOURNAL_DAMAGED\x104B'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
+	"\x16REASON_JOURNAL_DAMAGED\x104\x12\x15\n" +
+	"\x11REASON_RECOVERING\x105B'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
 
 var (
 	file_leadline_v1_reason_proto_rawDescOnce sync.Once

@@ -13,7 +13,7 @@ class DescribeJournalRequest(_message.Message):
     def __init__(self) -> None: ...
 
 class DescribeJournalResponse(_message.Message):
-    __slots__ = ["bytes", "epoch", "failure", "free_bytes", "keep_for_s", "leave_bytes", "most_bytes", "oldest", "partitions", "records", "refused", "waiting", "where"]
+    __slots__ = ["bytes", "epoch", "failure", "free_bytes", "keep_for_s", "leave_bytes", "most_bytes", "oldest", "other_servers", "own_partitions", "partitions", "records", "refused", "waiting", "where"]
     BYTES_FIELD_NUMBER: _ClassVar[int]
     EPOCH_FIELD_NUMBER: _ClassVar[int]
     FAILURE_FIELD_NUMBER: _ClassVar[int]
@@ -22,6 +22,8 @@ class DescribeJournalResponse(_message.Message):
     LEAVE_BYTES_FIELD_NUMBER: _ClassVar[int]
     MOST_BYTES_FIELD_NUMBER: _ClassVar[int]
     OLDEST_FIELD_NUMBER: _ClassVar[int]
+    OTHER_SERVERS_FIELD_NUMBER: _ClassVar[int]
+    OWN_PARTITIONS_FIELD_NUMBER: _ClassVar[int]
     PARTITIONS_FIELD_NUMBER: _ClassVar[int]
     RECORDS_FIELD_NUMBER: _ClassVar[int]
     REFUSED_FIELD_NUMBER: _ClassVar[int]
@@ -35,12 +37,14 @@ class DescribeJournalResponse(_message.Message):
     leave_bytes: int
     most_bytes: int
     oldest: _timestamp_pb2.Timestamp
+    other_servers: _containers.RepeatedScalarFieldContainer[str]
+    own_partitions: int
     partitions: int
     records: int
     refused: int
     waiting: int
     where: str
-    def __init__(self, where: _Optional[str] = ..., epoch: _Optional[int] = ..., partitions: _Optional[int] = ..., bytes: _Optional[int] = ..., most_bytes: _Optional[int] = ..., free_bytes: _Optional[int] = ..., leave_bytes: _Optional[int] = ..., records: _Optional[int] = ..., refused: _Optional[int] = ..., waiting: _Optional[int] = ..., oldest: _Optional[_Union[_timestamp_pb2.Timestamp, _Mapping]] = ..., keep_for_s: _Optional[float] = ..., failure: _Optional[str] = ...) -> None: ...
+    def __init__(self, where: _Optional[str] = ..., epoch: _Optional[int] = ..., partitions: _Optional[int] = ..., bytes: _Optional[int] = ..., most_bytes: _Optional[int] = ..., free_bytes: _Optional[int] = ..., leave_bytes: _Optional[int] = ..., records: _Optional[int] = ..., refused: _Optional[int] = ..., waiting: _Optional[int] = ..., oldest: _Optional[_Union[_timestamp_pb2.Timestamp, _Mapping]] = ..., keep_for_s: _Optional[float] = ..., failure: _Optional[str] = ..., own_partitions: _Optional[int] = ..., other_servers: _Optional[_Iterable[str]] = ...) -> None: ...
 
 class EndDriveRequest(_message.Message):
     __slots__ = ["drive", "vehicle"]

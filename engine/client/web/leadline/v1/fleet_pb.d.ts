@@ -362,6 +362,21 @@ export declare type DescribeJournalResponse = Message<"leadline.v1.DescribeJourn
    * @generated from field: string failure = 13;
    */
   failure: string;
+
+  /**
+   * How many of the partitions this server serves: all, where it shares them with
+   * none.
+   *
+   * @generated from field: uint32 own_partitions = 14;
+   */
+  ownPartitions: number;
+
+  /**
+   * The addresses of the other servers that share the journal now.
+   *
+   * @generated from field: repeated string other_servers = 15;
+   */
+  otherServers: string[];
 };
 
 /**

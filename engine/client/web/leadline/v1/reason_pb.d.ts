@@ -330,6 +330,15 @@ export enum Reason {
    * @generated from enum value: REASON_JOURNAL_DAMAGED = 52;
    */
   JOURNAL_DAMAGED = 52,
+
+  /**
+   * Of several servers that share a journal none serves the vehicle for the
+   * moment: one takes over what another one had, or cannot reach it. Call again,
+   * at any of them. UNAVAILABLE.
+   *
+   * @generated from enum value: REASON_RECOVERING = 53;
+   */
+  RECOVERING = 53,
 }
 
 /**

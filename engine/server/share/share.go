@@ -1,0 +1,403 @@
+package share
+
+import (
+	"context"
+	"encoding/json"
+	"errors"
+	"fmt"
+	"log/slog"
+	"slices"
+	"strconv"
+	"strings"
+	"sync"
+	"time"
+
+	"github.com/nats-io/nats.go/jetstream"
+)
+
+// bucket holds the keys.
+const bucket = "LEADLINE_SHARE"
+
+const (
+	serverPrefix    = "server."
+	partitionPrefix = "partition."
+)
+
+// Options say how a server shares in a journal.
+type Options struct {
+	// JetStream is the broker, Replicas how many of its servers keep the keys.
+	JetStream jetstream.JetStream
+	Replicas  int
+	// Self is this server: its ID must be one that no other has had.
+	Self Server
+	// Partitions is how many the journal has.
+	Partitions int
+	// Lease is for how long a server that is not heard of keeps what it has.
+	// Default 5 s.
+	Lease time.Duration
+	// Take begins to serve a partition, Give ends that in order, and Drop at once:
+	// another server has it. They are called one at a time.
+	Take func(ctx context.Context, partition int) error
+	Give func(ctx context.Context, partition int)
+	Drop func(partition int)
+	// Log takes what the operator should know.
+	Log *slog.Logger
+}
+
+// Share is one server's part. Its methods may be called from any goroutine.
+type Share struct {
+	o     Options
+	kv    jetstream.KeyValue
+	ended context.Context
+	end   context.CancelFunc
+	tasks sync.WaitGroup
+	poke  chan struct{} // holds a token when there may be something to do
+	// resting is closed when nothing more is to be done with partitions, rested once
+	// nothing is.
+	resting, rested chan struct{}
+	rest            sync.Once
+
+	mu      sync.Mutex
+	core    *core
+	own     uint64        // revision of this server's key
+	changed chan struct{} // closed when a partition changes hands
+}
+
+// beats is how often in a lease a server renews it.
+const beats = 5
+
+// giveTimeout bounds how long a partition that goes to another server is waited
+// for.
+const giveTimeout = 10 * time.Second
+
+// Join begins to share.
+func Join(ctx context.Context, o Options) (*Share, error) {
+	if o.Lease == 0 {
+		o.Lease = 5 * time.Second
+	}
+	kv, err := o.JetStream.KeyValue(ctx, bucket)
+	if errors.Is(err, jetstream.ErrBucketNotFound) {
+		kv, err = o.JetStream.CreateKeyValue(ctx, jetstream.KeyValueConfig{
+			Bucket: bucket, Description: "which Leadline server has which partition", History: 1, Storage: jetstream.FileStorage, Replicas: max(o.Replicas, 1),
+		})
+		if errors.Is(err, jetstream.ErrBucketExists) { // another one was faster
+			kv, err = o.JetStream.KeyValue(ctx, bucket)
+		}
+	}
+	if err != nil {
+		return nil, fmt.Errorf("share: opening the broker's bucket %s: %w", bucket, err)
+	}
+	s := &Share{o: o, kv: kv, poke: make(chan struct{}, 1), resting: make(chan struct{}), rested: make(chan struct{}), core: newCore(o.Self, o.Partitions, o.Lease), changed: make(chan struct{})}
+	s.ended, s.end = context.WithCancel(context.Background())
+	if err := s.renew(ctx); err != nil {
+		s.end()
+		return nil, fmt.Errorf("share: joining: %w", err)
+	}
+	seen, err := kv.WatchAll(s.ended)
+	if err != nil {
+		s.end()
+		return nil, fmt.Errorf("share: watching the broker's bucket %s: %w", bucket, err)
+	}
+	known := make(chan struct{})
+	s.tasks.Go(func() { s.watch(seen, known) })
+	select {
+	case <-known:
+	case <-ctx.Done():
+		s.stop()
+		return nil, fmt.Errorf("share: reading the broker's bucket %s: %w", bucket, ctx.Err())
+	}
+	s.tasks.Go(s.beat)
+	s.tasks.Go(s.work)
+	return s, nil
+}
+
+func (s *Share) stop() {
+	s.end()
+	s.tasks.Wait()
+}
+
+// watch keeps up with the keys; known is closed once all that were there are known.
+func (s *Share) watch(w jetstream.KeyWatcher, known chan struct{}) {
+	defer func() { _ = w.Stop() }()
+	for {
+		select {
+		case <-s.ended.Done():
+			return
+		case e, open := <-w.Updates():
+			switch {
+			case !open:
+				return
+			case e == nil:
+				close(known)
+			default:
+				s.saw(e)
+			}
+		}
+	}
+}
+
+// saw takes in a key.
+func (s *Share) saw(e jetstream.KeyValueEntry) {
+	now := time.Now()
+	gone := e.Operation() != jetstream.KeyValuePut
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	if id, ok := strings.CutPrefix(e.Key(), serverPrefix); ok {
+		var of Server
+		if !gone && json.Unmarshal(e.Value(), &of) != nil {
+			s.o.Log.Error("a server's key cannot be read", "key", e.Key())
+			return
+		}
+		if was := s.core.servers[id]; !gone && was == nil && id != s.o.Self.ID {
+			s.o.Log.Info("another server shares the journal", "server", id, "address", of.Address, "version", of.Version)
+		}
+		s.core.sawServer(id, of, e.Revision(), gone, now)
+		return
+	}
+	number, ok := strings.CutPrefix(e.Key(), partitionPrefix)
+	i, err := strconv.Atoi(number)
+	if !ok || err != nil || i < 0 || i >= s.o.Partitions {
+		return // of another version
+	}
+	owner := string(e.Value())
+	if gone {
+		owner = ""
+	}
+	s.partition(i, owner, e.Revision(), now)
+}
+
+// partition notes a partition's key; mu is held.
+func (s *Share) partition(i int, owner string, revision uint64, now time.Time) {
+	was := s.core.parts[i].owner
+	s.core.sawPartition(i, owner, revision, now)
+	if s.core.parts[i].owner != was {
+		s.news()
+		s.wake()
+	}
+}
+
+// news tells those who wait that something has changed; mu is held.
+func (s *Share) news() {
+	close(s.changed)
+	s.changed = make(chan struct{})
+}
+
+func (s *Share) wake() {
+	select {
+	case s.poke <- struct{}{}:
+	default:
+	}
+}
+
+// beat renews this server's key.
+func (s *Share) beat() {
+	tick := time.NewTicker(s.o.Lease / beats)
+	defer tick.Stop()
+	for {
+		select {
+		case <-s.ended.Done():
+			return
+		case <-tick.C:
+		}
+		ctx, cancel := context.WithTimeout(s.ended, s.o.Lease/2)
+		err := s.renew(ctx)
+		cancel()
+		if err != nil && s.ended.Err() == nil {
+			s.o.Log.Warn("this server's lease cannot be renewed", "error", err)
+		}
+		s.wake()
+	}
+}
+
+// renew writes this server's key.
+func (s *Share) renew(ctx context.Context) error {
+	s.mu.Lock()
+	s.core.self.Beat++
+	self, key, revision := s.core.self, serverPrefix+s.o.Self.ID, s.own
+	s.mu.Unlock()
+	value, err := json.Marshal(self)
+	if err != nil {
+		panic("share: " + err.Error()) // there is nothing in it that has no JSON
+	}
+	sent := time.Now()
+	next, err := s.kv.Update(ctx, key, value, revision)
+	if wrongRevision(err) { // it was swept, or an earlier renewal came through after all
+		var e jetstream.KeyValueEntry
+		if e, err = s.kv.Get(ctx, key); errors.Is(err, jetstream.ErrKeyNotFound) {
+			next, err = s.kv.Create(ctx, key, value)
+		} else if err == nil {
+			next, err = s.kv.Update(ctx, key, value, e.Revision())
+		}
+	}
+	if err != nil {
+		return err
+	}
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	wasFresh := s.core.fresh(sent)
+	s.own = next
+	s.core.renew(sent, time.Now())
+	if !wasFresh {
+		s.news()
+	}
+	return nil
+}
+
+func wrongRevision(err error) bool {
+	var api *jetstream.APIError
+	return errors.As(err, &api) && api.ErrorCode == jetstream.JSErrCodeStreamWrongLastSequence
+}
+
+// work does what follows from the keys, one step at a time.
+func (s *Share) work() {
+	defer close(s.rested)
+	for {
+		select {
+		case <-s.resting:
+			return
+		default:
+		}
+		s.mu.Lock()
+		do := s.core.next(time.Now())
+		s.mu.Unlock()
+		if do.verb == nothing {
+			select {
+			case <-s.ended.Done():
+				return
+			case <-s.resting:
+				return
+			case <-s.poke:
+			}
+			continue
+		}
+		s.do(do)
+		if s.ended.Err() != nil {
+			return
+		}
+	}
+}
+
+// do does one step.
+func (s *Share) do(do step) {
+	i, key := do.partition, partitionPrefix+strconv.Itoa(do.partition)
+	ctx, cancel := context.WithTimeout(s.ended, giveTimeout)
+	defer cancel()
+	var err error
+	switch do.verb {
+	case drop:
+		s.set(i, away)
+		s.o.Drop(i)
+		s.o.Log.Warn("partition is another server's now", "partition", i+1)
+	case take:
+		if err = s.o.Take(s.ended, i); err == nil {
+			s.set(i, mine)
+		}
+	case give:
+		if s.set(i, away) == mine {
+			s.o.Give(ctx, i)
+		}
+		if err = s.put(ctx, i, "", do.revision); err == nil {
+			s.o.Log.Info("partition given up", "partition", i+1)
+		}
+	case claim:
+		err = s.claim(ctx, do)
+	case hold:
+		err = s.put(ctx, i, s.o.Self.ID, do.revision)
+	case sweep:
+		err = s.kv.Delete(ctx, serverPrefix+do.dead, jetstream.LastRevision(do.deadAt))
+		if err == nil || wrongRevision(err) {
+			s.learn(ctx, serverPrefix+do.dead)
+		}
+	}
+	if err == nil || s.ended.Err() != nil {
+		return
+	}
+	if wrongRevision(err) { // another one was faster
+		s.learn(ctx, key)
+	} else {
+		s.o.Log.Warn("a partition cannot change hands yet", "partition", i+1, "error", err)
+	}
+	s.mu.Lock()
+	s.core.later(i, time.Now().Add(s.o.Lease/beats))
+	s.mu.Unlock()
+}
+
+// claim writes a partition's key. Of a server that seems dead it asks once more.
+func (s *Share) claim(ctx context.Context, do step) error {
+	if do.dead != "" {
+		e, err := s.kv.Get(ctx, serverPrefix+do.dead)
+		if err != nil && !errors.Is(err, jetstream.ErrKeyNotFound) {
+			return err
+		}
+		if err == nil && e.Revision() != do.deadAt {
+			s.saw(e)
+			return nil
+		}
+		s.o.Log.Warn("server is not heard of any more", "server", do.dead, "partition", do.partition+1)
+	}
+	return s.put(ctx, do.partition, s.o.Self.ID, do.revision)
+}
+
+// put writes a partition's key over a revision of it: an empty owner frees it.
+func (s *Share) put(ctx context.Context, i int, owner string, over uint64) error {
+	revision, err := s.kv.Update(ctx, partitionPrefix+strconv.Itoa(i), []byte(owner), over)
+	if err != nil {
+		return err
+	}
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	s.core.wrote(i, owner, revision, time.Now())
+	s.news()
+	return nil
+}
+
+// learn reads a key that is not as it was thought to be.
+func (s *Share) learn(ctx context.Context, key string) {
+	switch e, err := s.kv.Get(ctx, key); {
+	case err == nil:
+		s.saw(e)
+	case errors.Is(err, jetstream.ErrKeyNotFound):
+		s.mu.Lock()
+		defer s.mu.Unlock()
+		if id, ok := strings.CutPrefix(key, serverPrefix); ok {
+			delete(s.core.servers, id)
+		}
+	}
+}
+
+// set notes what this server does with a partition, and returns what it did.
+func (s *Share) set(i int, to state) (was state) {
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	was, s.core.parts[i].state = s.core.parts[i].state, to
+	s.news()
+	return was
+}
+
+// Lost says that another server writes a partition: this one has stopped with it,
+// and takes it again if its key still names this one.
+func (s *Share) Lost(i int) {
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	s.core.parts[i].state = away
+	s.core.later(i, time.Now().Add(s.o.Lease/beats))
+	s.news()
+	s.wake()
+}
+
+// free takes out the keys that name this server.
+func (s *Share) free(ctx context.Context) {
+	s.mu.Lock()
+	parts, own := slices.Clone(s.core.parts), s.own
+	s.mu.Unlock()
+	for i, p := range parts {
+		if p.owner == s.o.Self.ID {
+			if err := s.put(ctx, i, "", p.revision); err != nil {
+				s.o.Log.Warn("partition cannot be freed: others take it when the lease is over", "partition", i+1, "error", err)
+			}
+		}
+	}
+	if err := s.kv.Delete(ctx, serverPrefix+s.o.Self.ID, jetstream.LastRevision(own)); err != nil {
+		s.o.Log.Warn("this server's key cannot be taken out: it ends by itself", "error", err)
+	}
+}
