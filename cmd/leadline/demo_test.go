@@ -38,7 +38,7 @@ func TestDemo(t *testing.T) {
 		}
 	}
 	readJSON(t, good(t, "demo", "--out", dir, "--json"), &got)
-	if !got.Passed || got.Seed != 1 || got.Dir != dir || len(got.Scenes) != 3 ||
+	if !got.Passed || got.Seed != 1 || got.Dir != dir || len(got.Scenes) != 4 ||
 		!strings.Contains(got.Note, "INVENTED") || !strings.Contains(got.Caution, "not certified") {
 		t.Errorf("the demo prints %+v", got)
 	}
