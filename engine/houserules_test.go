@@ -70,7 +70,7 @@ var mayImport = map[string][]string{
 	"fixtures/drives":       {"engine/drivefile", "engine/geo", "engine/sensor", "fixtures/sim"},
 	"fixtures/roads":        {},
 	"fixtures/credentials":  {},
-	"fixtures/scenes":       {"engine/drivefile", "engine/sensor", "engine/study/score", "network", "terrain", "fixtures/drives", "fixtures/outside", "fixtures/roads", "fixtures/sim"},
+	"fixtures/scenes":       {"engine/drivefile", "engine/geo", "engine/sensor", "engine/study/score", "network", "terrain", "fixtures/drives", "fixtures/outside", "fixtures/roads", "fixtures/sim"},
 	"fixtures/accept": {
 		"engine/drivefile", "engine/geo", "engine/plane", "engine/sensor", "engine/session", "engine/study/replay", "engine/study/score", "engine/summary",
 		"network", "network/roadfile", "terrain", "fixtures/drives", "fixtures/outside", "fixtures/reference", "fixtures/sim",
