@@ -19,6 +19,8 @@ type voice struct {
 	pressure     bool // barometers that give a pressure
 	// sigmaM is the least sigma that heights state, 0 if none does.
 	sigmaM float64
+	// depthM is the greatest depth of soundings.
+	depthM float64
 }
 
 // voices lists who speaks, by name and kind.
@@ -42,6 +44,7 @@ func voices(events []sensor.Event) []voice {
 			out[i].states(m.SigmaM)
 		case sensor.Sounding:
 			out[i].states(m.SigmaM)
+			out[i].depthM = math.Max(out[i].depthM, m.DepthBelowTransducerM+m.TransducerDepthM)
 		}
 	}
 	return out

@@ -178,7 +178,7 @@ var unlisted = []plant{
 	{name: "car: distances ×7", scene: plainCar, spoil: each(func(m *sensor.Travel) { m.DistanceM *= 7 })},
 	{name: "flight: displacement ×0.7", scene: flyer, spoil: each(func(m *sensor.Displacement) { m.EastM *= 0.7; m.NorthM *= 0.7 }), shortS: 30},
 	{name: "car: turns ×1.5", scene: plainCar, spoil: each(func(m *sensor.Turn) { m.AngleRad *= 1.5 })},
-	{name: "survey: depths ×1.3", scene: surveyor, spoil: each(func(m *sensor.Sounding) { m.DepthBelowTransducerM *= 1.3 })},
+	{name: "survey: depths ×1.3", scene: surveyor, spoil: each(func(m *sensor.Sounding) { m.DepthBelowTransducerM *= 1.3 }), want: "; or multiply by 0."},
 }
 
 var unspoiled = []plant{

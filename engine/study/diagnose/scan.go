@@ -31,6 +31,13 @@ type scan struct {
 	north bool
 	// shown makes what people read of a value; nil: the value itself.
 	shown func(value float64) float64
+	// against are the families that it is there to challenge; see challenge.
+	against []string
+}
+
+// challenges reports whether a mistake is one that a search is there to challenge.
+func (s *scan) challenges(m *Mistake) bool {
+	return m.search != s && slices.Contains(s.against, m.family)
 }
 
 // values is how many are told apart.
@@ -77,9 +84,9 @@ func scans(vs []voice, suite *sensor.Suite) []scan {
 	for _, v := range vs {
 		if v.heights() {
 			noiseM := suite.Sensor(v.sensor, v.kind).Noise.SigmaM
-			sigmaM := cmp.Or(v.sigmaM, noiseM, datumStepM)
+			sigmaM := v.leastSigmaM(suite)
 			out = append(out, scan{
-				family: "datum " + v.sensor, step: datumStepM, reach: datumReachM, fine: datumFineM, least: datumLeastM,
+				family: v.datumFamily(), step: datumStepM, reach: datumReachM, fine: datumFineM, least: datumLeastM,
 				make:     func(value, half float64) Mistake { return v.offset(value, half, noiseM) },
 				lossNats: 0.5 * kernel.Log(1+datumStepM*datumStepM/4/(sigmaM*sigmaM)), sensor: v.sensor,
 			})
@@ -96,12 +103,21 @@ func scans(vs []voice, suite *sensor.Suite) []scan {
 	return out
 }
 
+// leastSigmaM is the least that is said of how exact heights are, the suite
+// included.
+func (v voice) leastSigmaM(suite *sensor.Suite) float64 {
+	return cmp.Or(v.sigmaM, suite.Sensor(v.sensor, v.kind).Noise.SigmaM, datumStepM)
+}
+
 // factorScans lists the searches for a factor.
-func factorScans(vs []voice) []scan {
+func factorScans(vs []voice, suite *sensor.Suite) []scan {
 	var out []scan
 	for _, v := range vs {
-		if name := v.lengths(); name != "" {
+		switch name := v.lengths(); {
+		case name != "":
 			out = append(out, v.factorScan(name))
+		case v.kind == sensor.KindSounding:
+			out = append(out, v.depthScan(v.leastSigmaM(suite)))
 		}
 	}
 	return out
@@ -124,17 +140,46 @@ func (v voice) lengths() string {
 // much better the log fits with one that is nearer.
 func (v voice) factorFamily() string { return "factor " + v.sensor + " " + v.kind }
 
+// datumFamily is what all offsets of a sensor's heights are of.
+func (v voice) datumFamily() string { return "datum " + v.sensor }
+
 func (v voice) factorScan(name string) scan {
 	return scan{
 		family: v.factorFamily(), step: factorStep, reach: factorReach, fine: factorFine, least: factorLeast, sensor: v.sensor,
 		make: func(value, _ float64) Mistake {
-			m := v.factor(name+" off by a factor of no usual unit, to be multiplied", distance, kernel.Exp(value), false,
-				"look at the wheel's size, its ticks a metre, the scale and the unit")
-			m.Unit = "times"
+			return v.anyFactor(name, distance, kernel.Exp(value), false, "look at the wheel's size, its ticks a metre, the scale and the unit")
+		},
+		shown: kernel.Exp, against: []string{v.factorFamily()},
+	}
+}
+
+// depthScan searches for a factor of depths, to challenge an offset: where the
+// floor is of nearly one depth, that does much of what a factor would. Units it
+// leaves alone: tides and errors of the map cost the right unit so much that by
+// chance another factor, in another place, fits better.
+func (v voice) depthScan(sigmaM float64) scan {
+	half := factorStep / 2 * v.depthM
+	return scan{
+		family: v.factorFamily(), step: factorStep, reach: factorReach, fine: factorFine, least: factorLeast, sensor: v.sensor,
+		make: func(value, half float64) Mistake {
+			m := v.anyFactor("depths", depth, kernel.Exp(value), true, "look at the unit, and at the sound speed that the sounder was set to")
+			exact := m.mend
+			m.mend = func(m sensor.Measurement) sensor.Measurement {
+				s := exact(m).(sensor.Sounding)
+				return broaden(s, half*math.Abs(s.DepthBelowTransducerM+s.TransducerDepthM), sigmaM)
+			}
 			return m
 		},
-		shown: kernel.Exp,
+		lossNats: 0.5 * kernel.Log(1+half*half/(sigmaM*sigmaM)),
+		shown:    kernel.Exp, against: []string{v.datumFamily()},
 	}
+}
+
+// anyFactor is a factor that was searched for.
+func (v voice) anyFactor(name string, p part, f float64, measured bool, remedy string) Mistake {
+	m := v.factor(name+" off by a factor of no usual unit, to be multiplied", p, f, measured, remedy)
+	m.Unit = "times"
+	return m
 }
 
 func northScan(who string, of func(s, k string) bool) scan {

@@ -79,19 +79,19 @@ func (c *course) compare(r *Report, base *entrant, tried []*entrant) {
 	r.judge()
 }
 
-// factors searches for factors of no usual unit, where a unit would be named or
-// nothing is although the log is suspect: a unit may fit better than the log as
+// factors searches for factors of no usual unit, where what they challenge would be
+// named or nothing is although the log is suspect: a unit may fit better than the log as
 // it stands only because it is nearer. These are many, and so they come last.
 func (c *course) factors(r *Report, base *entrant) (found []*entrant) {
-	searches := factorScans(c.voices)
+	searches := factorScans(c.voices, c.suite)
 	none := !slices.ContainsFunc(r.Candidates, func(k Candidate) bool { return k.Named })
 	if none && c.finished(base) && len(c.suspicions(base)) == 0 {
 		return nil
 	}
 	for i := range searches {
 		s := &searches[i]
-		isUnit := func(k Candidate) bool { return k.Named && k.mistake.family == s.family }
-		if !c.left() || !none && !slices.ContainsFunc(r.Candidates, isUnit) {
+		challenged := func(k Candidate) bool { return k.Named && s.challenges(k.mistake) }
+		if !c.left() || !none && !slices.ContainsFunc(r.Candidates, challenged) {
 			continue
 		}
 		ms := s.coarse()
@@ -104,7 +104,7 @@ func (c *course) factors(r *Report, base *entrant) (found []*entrant) {
 				best = e
 			}
 		}
-		if best == nil {
+		if best == nil || s.broadens() && best.mistake.Value == 0 { // as in tryAll
 			continue
 		}
 		if c.finished(best) {

@@ -57,21 +57,27 @@ func (r *Report) judge() {
 // in 1.4 % of logs.
 const challengeNats = 3.0
 
-// challenge holds against a unit that a factor between the units fits better,
-// and against that factor that it is no unit: it is there to challenge others,
-// and so many would fit this or that log that it is not named itself.
+// challenge holds against a unit that a factor between the units fits better, or
+// against an offset of depths that a factor does, and against that factor that it
+// is no unit: it is there to challenge others, and so many would fit this or that
+// log that it is not named itself. Of an offset that it fits about as well as, the
+// remedy says so: the depths differ too little to tell.
 func (r *Report) challenge() {
 	for i := range r.Candidates {
 		f := &r.Candidates[i]
 		s := f.mistake.search
-		if s == nil || s.shown == nil {
+		if s == nil || s.against == nil {
 			continue
 		}
 		f.Suspect = append(f.Suspect, "no usual unit has that factor")
 		for j := range r.Candidates {
 			k := &r.Candidates[j]
-			if k.mistake.search == nil && k.mistake.family == s.family && f.GivenUpAfter == nil && k.GainNats < f.GainNats-challengeNats {
+			switch behind := f.GainNats - k.GainNats; {
+			case !s.challenges(k.mistake) || f.GivenUpAfter != nil:
+			case behind > challengeNats:
 				k.Suspect = append(k.Suspect, fmt.Sprintf("a factor of no usual unit, ×%.3g, fits better", f.Value))
+			case behind > -logOdds && k.mistake.search != nil: // neither is more usual than the other
+				k.Remedy += fmt.Sprintf("; or multiply by %.3g, which fits about as well", f.Value)
 			}
 		}
 	}
