@@ -55,6 +55,9 @@ func LookBack(c Config, events []sensor.Event, o HindsightOptions) error {
 	if len(events) == 0 {
 		return errors.New("there is no event to look back over")
 	}
+	if gridded(s.state.belief.Moved()) {
+		return errors.New("a grid with velocity axes is not run backward: leave out the suite's velocity_grid to look back")
+	}
 	if o.TapeBytes == 0 {
 		o.TapeBytes = defaultTapeBytes
 	}

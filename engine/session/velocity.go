@@ -23,12 +23,16 @@ func (s *Session) coasts() sensor.Time {
 	switch {
 	case s.lines != nil:
 		mean, variance, _ := b.Moment(filter.Speed)
-		return sensor.Time(math.Ceil((math.Abs(mean) + 2*math.Sqrt(variance)) * t / partShiftM))
+		return sensor.Time(math.Ceil(t * math.Max((math.Abs(mean)+2*math.Sqrt(variance))/partShiftM, 1/keepAboveS)))
 	case len(b.Axes) > 0:
 		return sensor.Time(math.Ceil(b.Slices.CellsApart(t) / mostApart))
 	}
 	return 1
 }
+
+// keepAboveS is after how many seconds at most a speed along a road is kept from being
+// below 0: the position goes backwards in between.
+const keepAboveS = 2.0
 
 // mostApart is how many cells neighbouring velocities come apart in one step.
 const mostApart = 2.0
