@@ -98,7 +98,7 @@ func (o *keepOptions) share(encrypted bool) *server.Share {
 		return nil
 	}
 	how := client.Security{Encrypted: encrypted, AuthorityFile: o.shareAuthority}
-	return &server.Share{Address: o.shareAt, Dial: func(address string) (*grpc.ClientConn, error) { return client.DialSecure(address, how) }}
+	return &server.Share{Address: o.shareAt, OpenMap: openServed, Dial: func(address string) (*grpc.ClientConn, error) { return client.DialSecure(address, how) }}
 }
 
 // buildIdentity is the SHA-256 of the program's file: another one may compute

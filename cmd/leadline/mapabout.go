@@ -15,7 +15,7 @@ import (
 
 // served is the map under a name, for a server, which closes it.
 func (m *mapFile) served(name string) server.Map {
-	out := server.Map{Name: name, Space: m.Space, Names: m.Names, About: m.about(), Close: m.Close}
+	out := server.Map{Name: name, File: m.Path, Space: m.Space, Names: m.Names, About: m.about(), Close: m.Close}
 	if m.Roads != nil {
 		out.Roads = m.Roads
 		out.Check = func() string { return network.Check(m.Roads).String() }
@@ -31,13 +31,16 @@ func (m *mapFile) served(name string) server.Map {
 
 // uploadsTo keeps maps that clients send in a folder.
 func uploadsTo(folder string) *server.Uploads {
-	return &server.Uploads{Folder: folder, Suffixes: suffixes, Open: func(path string) (server.Map, error) {
-		m, err := openMap(path)
-		if err != nil {
-			return server.Map{}, err
-		}
-		return m.served(mapName(path)), nil
-	}}
+	return &server.Uploads{Folder: folder, Suffixes: suffixes, Open: openServed}
+}
+
+// openServed opens a map as a server has it.
+func openServed(path string) (server.Map, error) {
+	m, err := openMap(path)
+	if err != nil {
+		return server.Map{}, err
+	}
+	return m.served(mapName(path)), nil
 }
 
 // suffixes are how the names of compiled maps end.

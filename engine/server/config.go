@@ -86,6 +86,9 @@ type Map struct {
 	Check func() string
 	// About is told to those who ask what the map is.
 	About MapAbout
+	// File, if set, is the compiled file that it was opened from, for servers that share
+	// their maps.
+	File string
 	// Close, if set, is called once the server uses the map no more: when it
 	// has been replaced and its last session has left, or at the end of
 	// Shutdown.
@@ -244,7 +247,7 @@ func (c *Config) Validate() error {
 	}
 	if c.Uploads != nil {
 		errs = append(errs, c.Uploads.validate()...)
-	} else if len(c.Maps) == 0 {
+	} else if len(c.Maps) == 0 && c.Share == nil {
 		errs = append(errs, errors.New("server: no map: give at least one"))
 	}
 	if c.KeepFor != 0 && c.KeepFor < time.Second {
@@ -253,8 +256,8 @@ func (c *Config) Validate() error {
 	if c.Journal != nil {
 		errs = append(errs, c.Journal.Validate())
 	}
-	if c.Share != nil && (c.Journal == nil || !c.Journal.Shared || c.Share.Address == "" || c.Share.Dial == nil) {
-		errs = append(errs, errors.New("server: to share needs a journal that is shared, an address, and how to reach others"))
+	if c.Share != nil && (c.Journal == nil || !c.Journal.Shared || c.Share.Address == "" || c.Share.Dial == nil || c.Share.OpenMap == nil) {
+		errs = append(errs, errors.New("server: to share needs a journal that is shared, an address, how to reach others, and how to open a map"))
 	}
 	for _, f := range c.Limits.fields() {
 		if *f.v < 0 {

@@ -246,6 +246,11 @@ func (s *Server) revive(h *history) (o *owner, err error) {
 		return nil, refuse(leadlinev1.Reason_REASON_JOURNAL_DAMAGED, on, "drive %q of vehicle %q is damaged in the server's journal: %s: open another drive, with replace", h.open.GetDrive(), h.vehicle(), lost)
 	}
 	m := s.atlas.acquireFingerprint(h.open.GetHeader().GetMap(), h.opened.Fingerprint)
+	if m == nil && s.shared != nil {
+		if m, err = s.fetchMap(context.Background(), h.open.GetHeader().GetMap(), h.opened.Fingerprint, false); err != nil {
+			s.cfg.Log.Error("map cannot be had from other servers", "map", h.open.GetHeader().GetMap(), "error", err)
+		}
+	}
 	if m == nil {
 		return nil, refuse(leadlinev1.Reason_REASON_UNKNOWN_MAP, on, "drive %q of vehicle %q is in the server's journal and its map is not here: %q with the fingerprint %s: start the server with that map, or open another drive, with replace",
 			h.open.GetDrive(), h.vehicle(), h.open.GetHeader().GetMap(), h.opened.Fingerprint)
@@ -309,6 +314,9 @@ func (a *atlas) acquireFingerprint(name, fingerprint string) *mapUse {
 				found = m
 			}
 		}
+	}
+	if found == nil {
+		found = a.olderOf(fingerprint)
 	}
 	if found != nil {
 		found.sessions++

@@ -36,7 +36,7 @@ func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error)
 	if _, ok := leadlinev1.Reply_name[int32(req.GetReply())]; !ok {
 		return nil, badField("open.reply", "open: reply is %d: give one of those that feed.proto names", req.GetReply())
 	}
-	m := s.atlas.acquire(h.Map)
+	m := s.mapNamed(ctx, h.Map)
 	if m == nil {
 		return nil, s.unknownMap(h.Map)
 	}

@@ -139,7 +139,7 @@ func New(cfg Config) (*Server, error) {
 		}
 	}
 	if cfg.Share != nil {
-		s.shared = &shared{peers: peers{dial: cfg.Share.Dial, of: map[string]*grpc.ClientConn{}}}
+		s.shared = &shared{peers: peers{dial: cfg.Share.Dial, of: map[string]*grpc.ClientConn{}}, maps: sharedMaps{open: cfg.Share.OpenMap}}
 	}
 	if cfg.Journal != nil {
 		if err := s.openJournal(); err != nil {

@@ -25,6 +25,9 @@ type Share struct {
 	Address string
 	// Dial prepares a connection to another one, by its address.
 	Dial func(address string) (*grpc.ClientConn, error)
+	// OpenMap opens a compiled map that another server has stored. It must take any
+	// file, and check all of it.
+	OpenMap func(path string) (Map, error)
 	// Lease is for how long a server that is not heard of keeps its partitions.
 	// Default 5 s.
 	Lease time.Duration
@@ -43,7 +46,9 @@ type shared struct {
 	*share.Share // nil until it has joined
 	conn         *nats.Conn
 	peers        peers
-	open         []bool // the partitions whose drives are here; srv.mu guards it
+	maps         sharedMaps
+	storing      sync.WaitGroup // of maps
+	open         []bool         // the partitions whose drives are here; srv.mu guards it
 }
 
 func (s *Server) openShared() {
@@ -69,6 +74,12 @@ func (s *Server) join() error {
 	}
 	ctx, cancel := context.WithTimeout(context.Background(), time.Minute)
 	defer cancel()
+	if s.shared.maps.Maps, err = share.OpenMaps(ctx, js, b.Replicas); err == nil {
+		err = s.shared.maps.keepFetched()
+	}
+	if err != nil {
+		return fmt.Errorf("server: %w", err)
+	}
 	self := share.Server{ID: rand.Text(), Address: s.cfg.Share.Address, Version: s.cfg.Version}
 	joined, err := share.Join(ctx, share.Options{
 		JetStream: js, Replicas: b.Replicas, Self: self, Partitions: s.journal.Partitions(), Lease: s.cfg.Share.Lease,
@@ -82,6 +93,18 @@ func (s *Server) join() error {
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	s.shared.Share = joined
+	s.shared.storing.Go(func() {
+		whole, cancel := context.WithCancel(context.Background())
+		defer cancel()
+		go func() {
+			select {
+			case <-s.draining:
+				cancel()
+			case <-whole.Done():
+			}
+		}()
+		s.shareMaps(whole)
+	})
 	s.cfg.Log.Info("shares the journal", "server", self.ID, "address", self.Address, "partitions", s.journal.Partitions())
 	return nil
 }
@@ -239,6 +262,8 @@ func (s *Server) part() {
 	if s.shared == nil {
 		return
 	}
+	s.shared.storing.Wait()
+	s.shared.maps.forgetFetched()
 	if j := s.joined(); j != nil {
 		ctx, cancel := context.WithTimeout(context.Background(), 5*time.Second)
 		j.Leave(ctx)

@@ -20,6 +20,9 @@ import (
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
+// openSea is the map of a file that says nothing.
+func openSea(string) (Map, error) { return sea(), nil }
+
 // among is a server that shares a journal.
 func among(t *testing.T, o *journal.Options) *life {
 	t.Helper()
@@ -31,7 +34,7 @@ func among(t *testing.T, o *journal.Options) *life {
 	l := &life{t: t, addr: ln.Addr().String(), done: make(chan error, 1)}
 	l.cfg = Config{
 		Maps: []Map{sea()}, Journal: &mine, Build: "this", MaxCells: 1000,
-		Share: &Share{Address: l.addr, Dial: func(a string) (*grpc.ClientConn, error) { return client.Dial(a) }, Lease: 2 * time.Second},
+		Share: &Share{Address: l.addr, Dial: func(a string) (*grpc.ClientConn, error) { return client.Dial(a) }, OpenMap: openSea, Lease: 2 * time.Second},
 	}
 	if l.s, err = New(l.cfg); err != nil {
 		t.Fatal(err)
@@ -218,7 +221,7 @@ func askEach(t *testing.T, vehicles int, of ...*life) {
 func sharing(t *testing.T) Config {
 	o := atBroker(t)
 	o.Shared, o.Partitions = true, 4
-	return Config{Journal: o, Share: &Share{Address: "127.0.0.1:1", Dial: func(a string) (*grpc.ClientConn, error) { return client.Dial(a) }}}
+	return Config{Journal: o, Share: &Share{Address: "127.0.0.1:1", Dial: func(a string) (*grpc.ClientConn, error) { return client.Dial(a) }, OpenMap: openSea}}
 }
 
 // ofAnother is a vehicle that another server serves, where nobody answers.

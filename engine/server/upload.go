@@ -103,8 +103,9 @@ func (s *Server) takeMap(ctx context.Context, messages <-chan uploaded, b *leadl
 		m.close()
 		return nil, refuse(leadlinev1.Reason_REASON_BAD_MAP, about{"map": b.GetName()}, "upload: the file is a map of %s: give that kind", kindWord(m.kind()))
 	}
+	m.File = filepath.Join(s.uploads.Folder, b.GetName()+suffix)
 	old, err := s.atlas.put(m, b.GetReplace(), s.uploads.Maps, func() error {
-		if err := os.Rename(path, filepath.Join(s.uploads.Folder, b.GetName()+suffix)); err != nil {
+		if err := os.Rename(path, m.File); err != nil {
 			return s.cannotKeep(err)
 		}
 		if err := syncFolder(s.uploads.Folder); err != nil {
@@ -118,6 +119,9 @@ func (s *Server) takeMap(ctx context.Context, messages <-chan uploaded, b *leadl
 	}
 	if old != nil {
 		s.closeMap(old)
+	}
+	if err := s.shareMap(ctx, m, true); err != nil {
+		return nil, s.cannotKeep(err)
 	}
 	return s.atlas.describe(b.GetName())[0], nil
 }

@@ -130,7 +130,7 @@ func (u *Uploads) open(path, name string) (m Map, err error) {
 		}
 	}()
 	m, err = u.Open(path)
-	m.Name = name
+	m.Name, m.File = name, path
 	return m, err
 }
 

@@ -75,17 +75,9 @@ func Join(ctx context.Context, o Options) (*Share, error) {
 	if o.Lease == 0 {
 		o.Lease = 5 * time.Second
 	}
-	kv, err := o.JetStream.KeyValue(ctx, bucket)
-	if errors.Is(err, jetstream.ErrBucketNotFound) {
-		kv, err = o.JetStream.CreateKeyValue(ctx, jetstream.KeyValueConfig{
-			Bucket: bucket, Description: "which Leadline server has which partition", History: 1, Storage: jetstream.FileStorage, Replicas: max(o.Replicas, 1),
-		})
-		if errors.Is(err, jetstream.ErrBucketExists) { // another one was faster
-			kv, err = o.JetStream.KeyValue(ctx, bucket)
-		}
-	}
+	kv, err := openKeys(ctx, o.JetStream, o.Replicas)
 	if err != nil {
-		return nil, fmt.Errorf("share: opening the broker's bucket %s: %w", bucket, err)
+		return nil, err
 	}
 	s := &Share{o: o, kv: kv, poke: make(chan struct{}, 1), resting: make(chan struct{}), rested: make(chan struct{}), core: newCore(o.Self, o.Partitions, o.Lease), changed: make(chan struct{})}
 	s.ended, s.end = context.WithCancel(context.Background())
@@ -109,6 +101,23 @@ func Join(ctx context.Context, o Options) (*Share, error) {
 	s.tasks.Go(s.beat)
 	s.tasks.Go(s.work)
 	return s, nil
+}
+
+// openKeys opens the bucket, or makes it.
+func openKeys(ctx context.Context, js jetstream.JetStream, replicas int) (jetstream.KeyValue, error) {
+	kv, err := js.KeyValue(ctx, bucket)
+	if errors.Is(err, jetstream.ErrBucketNotFound) {
+		kv, err = js.CreateKeyValue(ctx, jetstream.KeyValueConfig{
+			Bucket: bucket, Description: "which Leadline server has which partition", History: 1, Storage: jetstream.FileStorage, Replicas: max(replicas, 1),
+		})
+		if errors.Is(err, jetstream.ErrBucketExists) { // another one was faster
+			kv, err = js.KeyValue(ctx, bucket)
+		}
+	}
+	if err != nil {
+		return nil, fmt.Errorf("share: opening the broker's bucket %s: %w", bucket, err)
+	}
+	return kv, nil
 }
 
 func (s *Share) stop() {
