@@ -32,10 +32,10 @@ func importCommand() *cobra.Command {
 	var o importOptions
 	c := &cobra.Command{
 		Use:   "import LOG -o DRIVE" + drivefile.Suffix + " --vehicle NAME",
-		Short: "Make a drive file of a log: a table (CSV), NMEA 0183 sentences, a GPX or IGC track",
+		Short: "Make a drive file of a log: a table (CSV or Parquet), NMEA 0183 sentences, a GPX, IGC or Parquet track",
 		Long: `Import makes a drive file of a log of your own. A table (CSV) needs a column
 file that says what its columns are; NMEA 0183 sentences are known, and so are
-the tracks of GPX and IGC files, whose points are fixes. What cannot be used is
+the tracks of GPX, IGC and Parquet files, whose points are fixes. What cannot be used is
 counted, located and left out. With --truth another track says where the vehicle
 was.`,
 		Args: cobra.ExactArgs(1),
@@ -47,10 +47,10 @@ was.`,
 	o.headerOptions.flags(c)
 	f.StringVar(&o.mapName, "map", "", "name of the map that the drive is for")
 	f.StringVar(&o.suite, "suite", "", "name of the suite that the drive is for")
-	f.StringVar(&o.columns, "columns", "", "CSV: file (YAML) that says what the columns are")
+	f.StringVar(&o.columns, "columns", "", "CSV, Parquet: file (YAML) that says what the columns are")
 	o.sentenceOptions.flags(c)
 	f.StringVar(&o.date, "date", "", "NMEA: day of the first sentence, as 2030-05-01, where none says it or a receiver says it wrong")
-	f.StringVar(&o.truth, "truth", "", "GPX or IGC file whose points are truths, to compare with")
+	f.StringVar(&o.truth, "truth", "", "GPX, IGC or Parquet file whose points are truths, to compare with")
 	f.Float64Var(&o.maxRefused, "max-refused", 10, "give up if more than this percentage cannot be used")
 	f.BoolVar(&o.asJSON, "json", false, "print the summary as JSON")
 	return c
@@ -146,7 +146,11 @@ func (o *importOptions) reader(path string) (readLog, error) {
 			return nil, err
 		}
 		return func(r io.Reader, emit logfile.Emit) (*logfile.Tally, error) {
-			return logfile.ReadCSV(r, path, columns, emit)
+			b := bufio.NewReaderSize(r, 1<<16)
+			if head, _ := b.Peek(len(logfile.ParquetMagic)); string(head) == logfile.ParquetMagic {
+				return logfile.ReadParquet(b, path, columns, emit)
+			}
+			return logfile.ReadCSV(b, path, columns, emit)
 		}, nil
 	}
 	return func(r io.Reader, emit logfile.Emit) (*logfile.Tally, error) {

@@ -25,6 +25,8 @@ func trackReader(head []byte) readTrack {
 	switch {
 	case bytes.HasPrefix(head, []byte("<")):
 		return logfile.ReadGPX
+	case bytes.HasPrefix(head, []byte(logfile.ParquetMagic)):
+		return logfile.ReadParquetTrack
 	case igcHead.Match(head):
 		return logfile.ReadIGC
 	}
@@ -49,7 +51,7 @@ func (o *importOptions) addTruth(w *drivefile.Writer, log *logfile.Tally) error 
 	}
 	read := trackReader(head)
 	if read == nil {
-		return fmt.Errorf("--truth: %s is neither GPX nor IGC by its beginning", o.truth)
+		return fmt.Errorf("--truth: %s is neither GPX nor IGC nor Parquet by its beginning", o.truth)
 	}
 	n := log.Usable() + log.Truths
 	t, err := read(b, o.truth, true, func(rec logfile.Record) error {

@@ -30,7 +30,7 @@ func TestBestTileByTile(t *testing.T) {
 		w.tiles.taps = u.spread
 		b.spread(&w.tiles)
 		w.endTiles(u, &b)
-		best := Best(logs(u.tiles.Mass))
+		best := logs(u.tiles.Mass)
 		out := u.follow(best)
 		for i, at := range u.then.At {
 			for x := range u.then.tile(i) {

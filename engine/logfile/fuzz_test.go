@@ -98,7 +98,7 @@ func FuzzReadCSV(f *testing.F) {
 }
 
 func TestFuzzCorporaAreThere(t *testing.T) {
-	for _, name := range []string{"FuzzReadNMEA", "FuzzReadCSV", "FuzzReadGPX", "FuzzReadIGC"} {
+	for _, name := range []string{"FuzzReadNMEA", "FuzzReadCSV", "FuzzReadGPX", "FuzzReadIGC", "FuzzReadParquet"} {
 		files, err := filepath.Glob("testdata/fuzz/" + name + "/*")
 		if err != nil || len(files) < 5 {
 			t.Errorf("%s: %d files in the corpus, %v", name, len(files), err)

@@ -1,6 +1,7 @@
 package session
 
 import (
+	"errors"
 	"math"
 	"reflect"
 	"slices"
@@ -102,7 +103,7 @@ func TestLookBackStops(t *testing.T) {
 	events := slices.SortedStableFunc(slices.Values(planeEvents(5)), sensor.Event.Compare)
 	stop := &Refusal{TooLate, "enough"}
 	o := HindsightOptions{Give: func(Hindsight) error { return stop }}
-	if err := LookBack(c, events, o); err != stop {
+	if err := LookBack(c, events, o); !errors.Is(err, stop) {
 		t.Errorf("got %v", err)
 	}
 	if err := LookBack(c, nil, o); err == nil {

@@ -1,5 +1,5 @@
 // Package belief writes a whole belief for a geographic information system: as
-// GeoTIFF on a plane, as GeoJSON on roads.
+// GeoTIFF on a plane, as GeoJSON or Parquet on roads.
 package belief
 
 import (
@@ -205,9 +205,10 @@ type line struct {
 	Coordinates [][2]float64 `json:"coordinates"`
 }
 
-// writeGeoJSON writes a line for each cell, the heaviest first, with its
-// probability. Gaussians count in the cell of their mean.
-func (b *Belief) writeGeoJSON(w io.Writer, space filter.LineSpace) error {
+// roadCells are the cells of a belief on roads, the heaviest first, with where each
+// begins and ends; what is left out of them is rest. Gaussians count in the cell of
+// their mean.
+func (b *Belief) roadCells(space filter.LineSpace) (cells []roadCell, rest float64) {
 	const mostLines = 200_000
 	lines := space.Lines(b.Level)
 	sums := map[road]float64{}
@@ -216,21 +217,20 @@ func (b *Belief) writeGeoJSON(w io.Writer, space filter.LineSpace) error {
 		cell := int32(b.Cloud.AlongM[i] / lines.WidthM[chart])
 		sums[road{chart: chart, cell: min(max(cell, 0), lines.Cells[chart]-1)}] += m
 	}
-	cells := make([]road, 0, len(sums))
+	all := make([]road, 0, len(sums))
 	for r, m := range sums {
-		cells = append(cells, road{r.chart, r.cell, m})
+		all = append(all, road{r.chart, r.cell, m})
 	}
-	slices.SortFunc(cells, func(x, y road) int {
+	slices.SortFunc(all, func(x, y road) int {
 		return cmp.Or(cmp.Compare(y.mass, x.mass), cmp.Compare(x.chart, y.chart), cmp.Compare(x.cell, y.cell))
 	})
-	rest := 0.0
-	for len(cells) > mostLines {
-		rest += cells[len(cells)-1].mass
-		cells = cells[:len(cells)-1]
+	for len(all) > mostLines {
+		rest += all[len(all)-1].mass
+		all = all[:len(all)-1]
 	}
 	var charts []int32
 	var along []float64
-	for _, r := range cells {
+	for _, r := range all {
 		width := lines.WidthM[r.chart]
 		charts = append(charts, r.chart, r.chart)
 		along = append(along, float64(r.cell)*width, float64(r.cell+1)*width)
@@ -243,6 +243,23 @@ func (b *Belief) writeGeoJSON(w io.Writer, space filter.LineSpace) error {
 		lon, lat := frame.Inverse(geo.Point{E: at.East[i], N: at.North[i]}).Degrees()
 		return [2]float64{math.Round(lon*1e8) / 1e8, math.Round(lat*1e8) / 1e8}
 	}
+	for i, r := range all {
+		cells = append(cells, roadCell{r, along[2*i], along[2*i+1], position(2 * i), position(2*i + 1)})
+	}
+	return cells, rest
+}
+
+// roadCell is a cell with where it is: metres along its edge, and degrees.
+type roadCell struct {
+	road
+	fromM, toM float64
+	from, to   [2]float64
+}
+
+// writeGeoJSON writes a line for each cell, the heaviest first, with its
+// probability.
+func (b *Belief) writeGeoJSON(w io.Writer, space filter.LineSpace) error {
+	cells, rest := b.roadCells(space)
 	collection := struct {
 		Type     string    `json:"type"`
 		Drive    string    `json:"drive"`
@@ -250,11 +267,11 @@ func (b *Belief) writeGeoJSON(w io.Writer, space filter.LineSpace) error {
 		Rest     float64   `json:"probability_left_out"`
 		Features []feature `json:"features"`
 	}{"FeatureCollection", b.Drive, b.stamp(), rest, []feature{}}
-	for i, r := range cells {
+	for _, r := range cells {
 		collection.Features = append(collection.Features, feature{
 			"Feature",
-			map[string]any{"edge": r.chart, "from_m": along[2*i], "to_m": along[2*i+1], "probability": r.mass, "time": b.stamp()},
-			line{"LineString", [][2]float64{position(2 * i), position(2*i + 1)}},
+			map[string]any{"edge": r.chart, "from_m": r.fromM, "to_m": r.toM, "probability": r.mass, "time": b.stamp()},
+			line{"LineString", [][2]float64{r.from, r.to}},
 		})
 	}
 	return json.NewEncoder(w).Encode(collection)

@@ -67,18 +67,12 @@ func (a *Agreement) Add(filtered, smoothed *summary.Posterior) {
 	angle := 0.5 * math.Atan2(2*en, ee-nn)
 	sin, cos := math.Sincos(angle)
 	u, v := d.E*cos+d.N*sin, -d.E*sin+d.N*cos
-	square := 0.0
-	if minor > least {
-		square = u*u/major + v*v/minor
-	} else {
-		square = 2 * u * u / major
+	square, limit := u*u/major+v*v/minor, 9.21
+	if !(minor > least) {
+		square, limit = 2*u*u/major, 2*6.635 // 99 % with one degree of freedom, twice
 	}
 	a.Compared++
 	a.square += square
-	limit := 9.21
-	if !(minor > least) {
-		limit = 2 * 6.635 // 99 % with one degree of freedom, twice
-	}
 	if square < limit {
 		a.within++
 	}
