@@ -61,11 +61,11 @@ func named(r *Report) (out []string) {
 }
 
 // TestFindsPlantedMistakes plants each usual mistake in simulated logs. The
-// diagnosis knows the log and the map alone. In the short form each sort twice
-// each, within an opening that is enough for them; in the long one all ten times,
+// diagnosis knows the log and the map alone. In the short form some of each sort,
+// once, within an opening that is enough for them; in the long one all ten times,
 // of which nine must be named.
 func TestFindsPlantedMistakes(t *testing.T) {
-	seeds, least := 2, 2
+	seeds, least := 1, 1
 	if accept.Long() {
 		seeds, least = 10, 9
 	}
@@ -76,7 +76,11 @@ func TestFindsPlantedMistakes(t *testing.T) {
 		}
 		t.Run(p.name, func(t *testing.T) {
 			hits, alone := 0, 0
-			for seed := uint64(1); seed <= uint64(seeds); seed++ {
+			first := uint64(1)
+			if !accept.Long() {
+				first += uint64(i % 2)
+			}
+			for seed := first; seed < first+uint64(seeds); seed++ {
 				r := diagnosed(t, p, seed)
 				names := named(r)
 				if p.found(r) || p.absorbed != "" && p.estimated(t, seed) {
