@@ -52,9 +52,6 @@ func LookBack(c Config, events []sensor.Event, o HindsightOptions) error {
 	if err != nil {
 		return err
 	}
-	if len(s.state.belief.Axes) > 0 {
-		return errors.New("a grid over velocities cannot be looked back over: set vehicle.velocity_grid to false in the suite")
-	}
 	if len(events) == 0 {
 		return errors.New("there is no event to look back over")
 	}
