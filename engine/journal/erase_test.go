@@ -216,6 +216,10 @@ func TestAge(t *testing.T) {
 			t.Fatalf("pack %d is still there", first())
 		}
 	}
+	func() { // until what has been chosen is gone
+		j.sweep.Lock()
+		defer j.sweep.Unlock()
+	}()
 	mustPut(t, l, "goes on")
 	j.Close()
 	_, k := openAt(t, o)

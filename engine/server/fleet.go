@@ -39,7 +39,7 @@ func (s *Server) ListVehicles(ctx context.Context, req *leadlinev1.ListVehiclesR
 	if m := req.GetMap(); m != "" && len(s.atlas.describe(m)) == 0 {
 		return nil, s.unknownMap(m)
 	}
-	pages, err := fromAll(ctx, s, func(ctx context.Context, c leadlinev1.PositionServiceClient) (*leadlinev1.ListVehiclesResponse, error) {
+	pages, err := fromAll(ctx, s, "", func(ctx context.Context, c leadlinev1.PositionServiceClient) (*leadlinev1.ListVehiclesResponse, error) {
 		return c.ListVehicles(ctx, req)
 	})
 	if err != nil {

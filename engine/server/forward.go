@@ -79,6 +79,13 @@ func (s *Server) routed(method string, handle grpc.UnaryHandler) grpc.UnaryHandl
 		if vehicle == "" {
 			return handle(ctx, req) // which says so
 		}
+		if erase, ok := req.(*leadlinev1.EraseVehicleRequest); ok {
+			if forwarded(ctx) && s.another(vehicle) {
+				s.alarms.forget(vehicle) // from when it was here
+				return new(leadlinev1.EraseVehicleResponse), nil
+			}
+			defer s.eraseElsewhere(ctx, erase)
+		}
 		var resp proto.Message
 		here, err := s.elsewhere(ctx, vehicle, func(at share.Server) (bool, error) {
 			c, err := s.peer(ctx, at)
@@ -94,6 +101,31 @@ func (s *Server) routed(method string, handle grpc.UnaryHandler) grpc.UnaryHandl
 			return handle(ctx, req)
 		}
 		return resp, nil
+	}
+}
+
+// another reports whether another server serves a vehicle.
+func (s *Server) another(vehicle string) bool {
+	j := s.joined()
+	return j != nil && j.Where(s.journal.Partition(vehicle)).Server != nil
+}
+
+// eraseElsewhere has servers that served a vehicle before forget its alarms, which is
+// all that they still have of it. One that cannot be reached has them until it is
+// started anew, and the log says so.
+func (s *Server) eraseElsewhere(ctx context.Context, req *leadlinev1.EraseVehicleRequest) {
+	s.alarms.forget(req.GetVehicle())
+	owner := "" // has done it, and may have another drive of it since
+	if j := s.joined(); j != nil {
+		if at := j.Where(s.journal.Partition(req.GetVehicle())); at.Server != nil {
+			owner = at.Server.ID
+		}
+	}
+	_, err := fromAll(ctx, s, owner, func(ctx context.Context, c leadlinev1.PositionServiceClient) (*leadlinev1.EraseVehicleResponse, error) {
+		return c.EraseVehicle(ctx, req)
+	})
+	if err != nil {
+		s.cfg.Log.Warn("another server may still have alarms of a vehicle that was erased", "error", err)
 	}
 }
 
@@ -189,7 +221,7 @@ func (s *Server) passOn(ctx context.Context, there grpc.BidiStreamingClient[lead
 				}
 				return r.err
 			}
-			if err := there.Send(r.message); err != nil {
+			if there.Send(r.message) != nil {
 				return nil // Recv has why
 			}
 		case <-s.draining:

@@ -83,14 +83,14 @@ func (s *Server) fromPeer(at share.Server, err error) error {
 	return err
 }
 
-// fromAll calls the other servers, where there are some and the call comes from
-// none of them, and returns what they answer.
-func fromAll[T any](ctx context.Context, s *Server, call func(context.Context, leadlinev1.PositionServiceClient) (T, error)) ([]T, error) {
+// fromAll calls the other servers but one, where there are some and the call comes
+// from none of them, and returns what they answer.
+func fromAll[T any](ctx context.Context, s *Server, but string, call func(context.Context, leadlinev1.PositionServiceClient) (T, error)) ([]T, error) {
 	j := s.joined()
 	if j == nil || forwarded(ctx) {
 		return nil, nil
 	}
-	others := j.Others()
+	others := slices.DeleteFunc(j.Others(), func(o share.Server) bool { return o.ID == but })
 	out, errs := make([]T, len(others)), make([]error, len(others))
 	var all sync.WaitGroup
 	for i, at := range others {
@@ -114,7 +114,7 @@ func fromAll[T any](ctx context.Context, s *Server, call func(context.Context, l
 // seenElsewhere notes who has seen an alarm at the server that has it; nil if none
 // does.
 func (s *Server) seenElsewhere(ctx context.Context, req *leadlinev1.SeeAlarmRequest) (*leadlinev1.SeeAlarmResponse, error) {
-	answers, err := fromAll(ctx, s, func(ctx context.Context, c leadlinev1.PositionServiceClient) (*leadlinev1.SeeAlarmResponse, error) {
+	answers, err := fromAll(ctx, s, "", func(ctx context.Context, c leadlinev1.PositionServiceClient) (*leadlinev1.SeeAlarmResponse, error) {
 		resp, err := c.SeeAlarm(ctx, req)
 		if failure(err).GetReason() == leadlinev1.Reason_REASON_UNKNOWN_ALARM {
 			return nil, nil

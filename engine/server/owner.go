@@ -191,6 +191,7 @@ func (o *owner) leave() {
 		}
 		o.clearAlarms(why)
 		o.srv.hub.moved(o.subject)
+		o.srv.hub.erase(o.subject) // what waits is told from there, or has been erased there
 		return
 	}
 	if !o.ended {

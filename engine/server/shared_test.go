@@ -143,8 +143,37 @@ func TestShare(t *testing.T) {
 			}
 		}
 	}()
+	erased(t, vehicles, b, c)
 	b.stop(limited(t))
 	c.stop(limited(t))
+}
+
+// erased proves that a vehicle is erased through any server.
+func erased(t *testing.T, vehicles int, of ...*life) {
+	t.Helper()
+	for v := range vehicles {
+		conn, err := client.Dial(of[v%len(of)].addr)
+		if err != nil {
+			t.Fatal(err)
+		}
+		defer conn.Close()
+		name := fmt.Sprint("v", v)
+		resp, err := leadlinev1.NewPositionServiceClient(conn).EraseVehicle(limited(t), &leadlinev1.EraseVehicleRequest{Vehicle: name})
+		if err != nil || resp.GetDrives() != 1 || resp.GetRecords() == 0 {
+			t.Errorf("%s is erased: %v, %v", name, resp, err)
+		}
+	}
+	for _, l := range of {
+		conn, err := client.Dial(l.addr)
+		if err != nil {
+			t.Fatal(err)
+		}
+		defer conn.Close()
+		page, err := leadlinev1.NewPositionServiceClient(conn).ListVehicles(limited(t), &leadlinev1.ListVehiclesRequest{})
+		if err != nil || len(page.GetVehicles()) > 0 {
+			t.Errorf("after all were erased there are %v, %v", page.GetVehicles(), err)
+		}
+	}
 }
 
 // askEach asks each server for all vehicles, by each of the calls that concern some.
