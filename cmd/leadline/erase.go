@@ -1,9 +1,11 @@
 package main
 
 import (
+	"cmp"
 	"context"
 	"fmt"
 	"io"
+	"strings"
 	"time"
 
 	"github.com/spf13/cobra"
@@ -79,6 +81,9 @@ func journalCommand() *cobra.Command {
 // printJournal prints how a journal is doing.
 func printJournal(w io.Writer, j *leadlinev1.DescribeJournalResponse) {
 	fmt.Fprintf(w, "%s, opened %d times, %d partitions\n", oneLine(j.GetWhere()), j.GetEpoch(), j.GetPartitions())
+	if others := j.GetOtherServers(); len(others) > 0 || j.GetOwnPartitions() < j.GetPartitions() {
+		fmt.Fprintf(w, "this server serves %d of them; others: %s\n", j.GetOwnPartitions(), cmp.Or(oneLine(strings.Join(others, ", ")), "none"))
+	}
 	fmt.Fprintf(w, "%d of %d MiB", j.GetBytes()>>20, j.GetMostBytes()>>20)
 	if j.FreeBytes != nil {
 		fmt.Fprintf(w, "; %d MiB free on its disk, of which %d are left free", j.GetFreeBytes()>>20, j.GetLeaveBytes()>>20)

@@ -38,8 +38,9 @@ var (
 	errLost  = refuse(leadlinev1.Reason_REASON_RECOVERING, nil, "another server has taken the vehicle over: call again")
 )
 
-// whoseWait is for how long a call waits until somebody serves its vehicle.
-const whoseWait = 15 * time.Second
+// whoseWait is for how long a call waits until somebody serves its vehicle: for as
+// long as a takeover takes, and less than commands wait.
+const whoseWait = 9 * time.Second
 
 // shared is this server among others.
 type shared struct {

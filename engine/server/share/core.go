@@ -31,6 +31,7 @@ type core struct {
 	// one that came so late that others may have taken what this server had.
 	renewed time.Time
 	term    uint64
+	began   time.Time // of the term
 }
 
 // seen is another server, or this one.
@@ -113,6 +114,7 @@ func (c *core) sawPartition(i int, owner string, revision uint64, now time.Time)
 func (c *core) renew(sent, received time.Time) {
 	if received.Sub(c.renewed) >= c.holds() {
 		c.term++
+		c.began = received
 	}
 	c.renewed = sent
 }
@@ -222,6 +224,9 @@ func (c *core) claim(now time.Time, more bool) (best step) {
 		p := &c.parts[i]
 		if p.owner != "" && c.alive(p.owner, now) || now.Before(p.retry) {
 			continue
+		}
+		if p.owner != "" && now.Sub(c.began) < c.lease {
+			continue // whoever could not renew has not heard of others that could not either
 		}
 		since := p.free
 		if s := c.servers[p.owner]; s != nil {
