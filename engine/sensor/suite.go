@@ -13,6 +13,7 @@ type Suite struct {
 	Sensors     []Sensor    `yaml:"sensors"`
 	Beacons     []Place     `yaml:"beacons"`
 	Posts       []Post      `yaml:"posts"`
+	Traffic     Traffic     `yaml:"traffic"`
 }
 
 // Vehicle holds what concerns the vehicle as a whole.

@@ -144,6 +144,7 @@ func (s *Suite) problems() []Finding {
 			f.add(path, "spacing_m and delay_sigma_s go together")
 		}
 	}
+	f.traffic(s.Traffic)
 	return f
 }
 

@@ -69,6 +69,7 @@ func (s *Suite) clone() *Suite {
 		c.Sensors[i].Nuisances = slices.Clone(c.Sensors[i].Nuisances)
 	}
 	c.Beacons, c.Posts = slices.Clone(s.Beacons), slices.Clone(s.Posts)
+	c.Traffic.Road, c.Traffic.Lines = slices.Clone(s.Traffic.Road), slices.Clone(s.Traffic.Lines)
 	return &c
 }
 

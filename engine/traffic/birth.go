@@ -65,10 +65,10 @@ func (f *Filter) births(e *ear, bearings []Bearing) (out []*birth) {
 	}
 	for j, b := range bearings {
 		peak := kernel.InvSqrt2Pi / b.SigmaRad
-		if f.model.Second < 1 && around[j*n+j]*peak > leastBirth*f.model.clutter() {
+		if f.model.TwoBearings < 1 && around[j*n+j]*peak > leastBirth*f.model.clutter() {
 			out = append(out, f.look(e, bearings, []int{j}, near[j]))
 		}
-		for k := j + 1; k < n && f.model.Second > 0; k++ {
+		for k := j + 1; k < n && f.model.TwoBearings > 0; k++ {
 			peak2 := 2 * peak * kernel.InvSqrt2Pi / bearings[k].SigmaRad
 			if around[j*n+k]*peak2 > leastBirth*f.model.clutter()*f.model.clutter() {
 				both := make([]bool, cells)

@@ -18,7 +18,7 @@ func stretch(t *testing.T, model Model, lines ...float64) (*sim.Roadside, *Filte
 	t.Helper()
 	r := &sim.Roadside{
 		Line: []geo.Point{{}, {E: 400}}, Hz: 5, SigmaRad: geo.Rad(3), Detection: 0.9, ReachM: 150, FalsePerS: 1,
-		SoundMPS: 20.05 * math.Sqrt(273.15), AxleM: 2.7, Second: model.Second,
+		SoundMPS: 20.05 * math.Sqrt(273.15), AxleM: 2.7, Second: model.TwoBearings,
 	}
 	var posts []Post
 	for i := range 4 {
@@ -67,7 +67,7 @@ func TestOneVehicle(t *testing.T) {
 	const seed = 3
 	for _, second := range []float64{0, 0.7} {
 		for _, mps := range []float64{14, -17} {
-			r, f := stretch(t, Model{Second: second}, 200)
+			r, f := stretch(t, Model{Traffic: sensor.Traffic{TwoBearings: second}}, 200)
 			labels := map[uint64]bool{}
 			through(t, seed, r, f, mps, func(v *sim.Passing, tS float64) {
 				at, _, _ := v.At(tS)
@@ -107,7 +107,7 @@ func TestOneVehicle(t *testing.T) {
 func TestSameAgain(t *testing.T) {
 	var runs [2][]Picture
 	for i := range runs {
-		r, f := stretch(t, Model{Second: 0.3}, 200)
+		r, f := stretch(t, Model{Traffic: sensor.Traffic{TwoBearings: 0.3}}, 200)
 		through(t, 9, r, f, 20, func(v *sim.Passing, tS float64) { runs[i] = append(runs[i], f.Picture(0)) })
 	}
 	if !reflect.DeepEqual(runs[0], runs[1]) {
@@ -119,7 +119,7 @@ func TestSameAgain(t *testing.T) {
 // the cells and over the ways in which two bearings may be the vehicle's or false,
 // where nothing else may be on the road.
 func TestScanByHand(t *testing.T) {
-	_, f := stretch(t, Model{PerHour: 0.01, LateralM: 1, Second: 0.4})
+	_, f := stretch(t, Model{Traffic: sensor.Traffic{PerHour: 0.01, TwoBearings: 0.4}, LateralM: 1})
 	for _, s := range f.unseen.slices {
 		clear(s.mass)
 	}
@@ -190,7 +190,7 @@ func TestDensitiesAreOfADirection(t *testing.T) {
 // TestUnseenStays: without posts that hear, the model's traffic flows on as it
 // was: what enters leaves.
 func TestUnseenStays(t *testing.T) {
-	model := Model{VanishPerS: 1e-9}.Filled()
+	model := Model{Traffic: sensor.Traffic{VanishPerS: 1e-9}}.Filled()
 	u := newUnseen(roadOf(t, bent...), &model)
 	before := u.total()
 	for range 500 {
@@ -229,7 +229,7 @@ func TestBadInput(t *testing.T) {
 		"no posts":      {nil, Model{}, nil, []string{"no posts"}},
 		"post twice":    {[]Post{{ID: "p"}, {ID: "p"}}, Model{}, nil, []string{`post "p" is there twice`}},
 		"line":          {posts, Model{}, []float64{5}, []string{"a line at 5 m", "20 m or more from either end"}},
-		"figures, both": {posts, Model{Detection: 1, ReachM: -3}, nil, []string{"detection is 1", "reach_m is -3"}},
+		"figures, both": {posts, Model{Traffic: sensor.Traffic{Detection: 1, ReachM: -3}}, nil, []string{"traffic.detection", "traffic.reach_m"}},
 	} {
 		_, err := New(road, c.posts, c.model, c.lines...)
 		for _, says := range c.says {
@@ -270,7 +270,7 @@ func TestWatch(t *testing.T) {
 	var said []Said
 	for _, h := range r.Listen(sim.Random(1, sim.StreamHearing), 0, 10, []sim.Passing{v}) {
 		for i, b := range scanOf(r, h).Bearings {
-			said = append(said, Said{sensor.Time(math.Round(h.TimeS * 1e9)), fmt.Sprint("p", h.Post), uint64(i), b})
+			said = append(said, Said{sensor.Time(math.Round(h.TimeS * 1e9)), fmt.Sprint("p", h.Post), "", uint64(i), b})
 		}
 	}
 	const seed = 11
@@ -325,7 +325,7 @@ func TestWatch(t *testing.T) {
 	before := f.Picture(0.5)
 	far := Bearing{0, geo.Rad(3)} // from behind the posts
 	for i := range 30 {
-		if err := w.Add(Said{before.Time + sensor.Time(i+1)*1e9, "p3", 0, far}); err != nil {
+		if err := w.Add(Said{before.Time + sensor.Time(i+1)*1e9, "p3", "", 0, far}); err != nil {
 			t.Fatal(err)
 		}
 	}

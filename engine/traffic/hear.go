@@ -129,7 +129,7 @@ func (f *Filter) settle(c *cluster, n int) {
 	m := len(c.bearings)
 	a := association{bearings: m, spurious: f.model.clutter(), new1: make([]float64, m)}
 	pairs := 0
-	if f.model.Second > 0 {
+	if f.model.TwoBearings > 0 {
 		pairs = m * (m - 1) / 2
 		a.new2 = make([]float64, pairs)
 	}

@@ -28,7 +28,7 @@ const (
 
 func newUnseen(r *Road, m *Model) *unseen {
 	u := &unseen{grid: grid{stepM: unseenStepM, stepMPS: unseenStepMPS}, lengthM: r.lengthM, perS: m.PerHour / 3600 / 2}
-	half := int(math.Ceil((m.SpeedMPS + 3.5*m.SpeedDev) / unseenStepMPS))
+	half := int(math.Ceil((m.SpeedMPS + 3.5*m.SpeedSigmaMPS) / unseenStepMPS))
 	u.firstMPS = -float64(half) * unseenStepMPS
 	n := int(r.lengthM/unseenStepM) + 3
 	sum := 0.0
@@ -36,7 +36,7 @@ func newUnseen(r *Road, m *Model) *unseen {
 		v := math.Abs(u.speed(k))
 		p := 0.0
 		if v >= slowestMPS {
-			p = kernel.NormalDensity((v - m.SpeedMPS) / m.SpeedDev)
+			p = kernel.NormalDensity((v - m.SpeedMPS) / m.SpeedSigmaMPS)
 		}
 		u.part = append(u.part, p)
 		sum += p

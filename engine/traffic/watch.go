@@ -16,6 +16,7 @@ import (
 // set of bearings. One goroutine owns it.
 type Watch struct {
 	filter  *Filter
+	suite   *sensor.Suite // of a watch that Open made
 	hold    sensor.Time
 	period  sensor.Time
 	deaf    sensor.Time
@@ -26,11 +27,12 @@ type Watch struct {
 	posts   []hearing // by ear
 }
 
-// Said is what a post says: one bearing. What agrees in time, post and number is
-// one and the same.
+// Said is what a post says: one bearing. What agrees in time, post, sensor and
+// number is one and the same.
 type Said struct {
 	Time   sensor.Time
 	Post   string
+	Sensor string
 	Number uint64
 	Bearing
 }
@@ -96,7 +98,7 @@ func (w *Watch) Add(s Said) error {
 func (w *Watch) Flush() error { return w.release(w.newest) }
 
 func (w *Watch) compare(a, b Said) int {
-	return cmp.Or(cmp.Compare(a.Time, b.Time), cmp.Compare(a.Post, b.Post), cmp.Compare(a.Number, b.Number))
+	return cmp.Or(cmp.Compare(a.Time, b.Time), cmp.Compare(a.Post, b.Post), cmp.Compare(a.Sensor, b.Sensor), cmp.Compare(a.Number, b.Number))
 }
 
 // release gives to the filter what is of a time or before.

@@ -39,7 +39,7 @@ func (h *heardAs) listen(g *grid, e *ear, m *Model, bearings []Bearing) {
 	n := len(bearings)
 	h.said = e.say(h.said, bearings)
 	pairs := 0
-	if m.Second > 0 {
+	if m.TwoBearings > 0 {
 		pairs = n * (n - 1) / 2
 	}
 	cells := g.count()
@@ -87,7 +87,7 @@ func (h *heardAs) listen(g *grid, e *ear, m *Model, bearings []Bearing) {
 			offset := e.offset(where, piece)
 			e.densities(front, h.said, offset, distance, side)
 			for j, l := range front {
-				f := float64(pd*(1-m.Second)) * l
+				f := float64(pd*(1-m.TwoBearings)) * l
 				h.factor[1+j][c] = f
 				h.one[j] += float64(p * f)
 			}
@@ -104,7 +104,7 @@ func (h *heardAs) listen(g *grid, e *ear, m *Model, bearings []Bearing) {
 			e.densities(rear, h.said, offset, offset.Norm(), side)
 			for j := range n {
 				for l := j + 1; l < n; l++ {
-					f := float64(pd*m.Second) * (float64(front[j]*rear[l]) + float64(front[l]*rear[j]))
+					f := float64(pd*m.TwoBearings) * (float64(front[j]*rear[l]) + float64(front[l]*rear[j]))
 					q := pair(j, l, n)
 					h.factor[1+n+q][c] = f
 					h.two[q] += float64(p * f)
