@@ -32,7 +32,8 @@ func demoCommand() *cobra.Command {
 a satellite fix: a van that knows nothing of its start, a survey craft, a lorry
 that posts hear. For each it compiles the map, replays the drive, scores it,
 feeds it to a server on this machine, asks where the vehicle is, and compares
-the posteriors of both. It prints every command that it runs, and needs nothing
+the posteriors of both. And it follows the traffic of a road, unnamed vehicles
+past listening posts, and counts it. It prints every command that it runs, and needs nothing
 but this program.
 
 With --andorra it does the same with an invented van on OpenStreetMap's extract
@@ -106,7 +107,14 @@ func demo(c *cobra.Command, o *demoOptions) error {
 			return fmt.Errorf("%s: %w", s.Title, err)
 		}
 	}
-	r.say("\n%d. The same through a server on this machine\n", len(list)+1)
+	steps := len(list)
+	if !o.andorra && o.roads == "" {
+		if err := r.traffic(); err != nil {
+			return fmt.Errorf("traffic: %w", err)
+		}
+		steps++
+	}
+	r.say("\n%d. The drives through a server on this machine\n", steps+1)
 	if err := r.serve(); err != nil {
 		return err
 	}

@@ -21,6 +21,10 @@ func TestDemo(t *testing.T) {
 		Seed                        uint64
 		Passed                      bool
 		Next                        []string
+		Traffic                     struct {
+			DriveFile         string `json:"drive_file"`
+			Forward, Backward [2]int
+		}
 		Scenes                      []struct {
 			Drive, Map, Results string
 			MapPNG              string `json:"map_png"`
@@ -41,6 +45,9 @@ func TestDemo(t *testing.T) {
 	if !got.Passed || got.Seed != 1 || got.Dir != dir || len(got.Scenes) != 4 ||
 		!strings.Contains(got.Note, "INVENTED") || !strings.Contains(got.Caution, "not certified") {
 		t.Errorf("the demo prints %+v", got)
+	}
+	if w := got.Traffic; w.Forward[1]+w.Backward[1] < 5 || w.DriveFile == "" {
+		t.Errorf("traffic: %+v", w)
 	}
 	for _, s := range got.Scenes {
 		if !strings.HasPrefix(s.Drive, "invented-") || len(s.Missed) > 0 {

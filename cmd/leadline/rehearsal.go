@@ -25,14 +25,15 @@ import (
 // rehearsal is a demonstration under way. It works by this program's own
 // commands, and prints them. Its exported fields are what --json prints.
 type rehearsal struct {
-	Note    string       `json:"note"`
-	Caution string       `json:"caution"`
-	Version string       `json:"version"`
-	Seed    uint64       `json:"seed"`
-	Dir     string       `json:"dir"`
-	Scenes  []*rehearsed `json:"scenes"`
-	Next    []string     `json:"next"` // commands to try
-	Passed  bool         `json:"passed"`
+	Note    string        `json:"note"`
+	Caution string        `json:"caution"`
+	Version string        `json:"version"`
+	Seed    uint64        `json:"seed"`
+	Dir     string        `json:"dir"`
+	Scenes  []*rehearsed  `json:"scenes"`
+	Traffic *heardTraffic `json:"traffic,omitempty"`
+	Next    []string      `json:"next"` // commands to try
+	Passed  bool          `json:"passed"`
 
 	c       *cobra.Command
 	asJSON  bool
@@ -268,6 +269,9 @@ func (r *rehearsal) end() error {
 		for _, m := range s.Missed {
 			missed = append(missed, s.Drive+": "+m)
 		}
+	}
+	if r.Traffic != nil {
+		missed = append(missed, r.Traffic.Missed...)
 	}
 	r.Passed = len(missed) == 0
 	if r.asJSON {
