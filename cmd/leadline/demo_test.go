@@ -25,7 +25,7 @@ func TestDemo(t *testing.T) {
 			DriveFile         string `json:"drive_file"`
 			Forward, Backward [2]int
 		}
-		Scenes                      []struct {
+		Scenes []struct {
 			Drive, Map, Results string
 			MapPNG              string `json:"map_png"`
 			TrackPNG            string `json:"track_png"`

@@ -1,0 +1,56 @@
+package main
+
+import (
+	"bytes"
+	"path/filepath"
+	"strings"
+	"testing"
+
+	"leadline/engine/sensor"
+	"leadline/fixtures/scenes"
+)
+
+// TestTraffic: counts are those of the world, pictures come in the text form, and
+// what cannot be used is said while the rest goes on.
+func TestTraffic(t *testing.T) {
+	const seed = 1
+	s, err := scenes.Traffic(seed)
+	if err != nil {
+		t.Fatal(err)
+	}
+	dir := t.TempDir()
+	suite, drive := filepath.Join(dir, s.SuiteName+".yaml"), filepath.Join(dir, "t.drive.jsonl")
+	if err := writeBytes(suite, s.Suite); err != nil {
+		t.Fatal(err)
+	}
+	elsewhere := s.Drive.Events[40]
+	b := elsewhere.Measurement.(sensor.AcousticBearing)
+	b.Post = "elsewhere"
+	elsewhere.Measurement = b
+	s.Drive.Events[40] = elsewhere
+	if err := writeDrive(drive, s.Drive); err != nil {
+		t.Fatal(err)
+	}
+	var out, errs bytes.Buffer
+	status := run([]string{"traffic", drive, "--every", "30", "--parts", "6"}, &out, &errs)
+	if says := errs.String(); status != exitBad || !strings.Contains(says, `1 measurements could not be used`) || !strings.Contains(says, `post "elsewhere"`) || strings.Count(says, "\n") != 1 {
+		t.Errorf("seed %d: status %d: %s", seed, status, says)
+	}
+	if says := out.String(); !strings.Contains(says, "line middle at 300 m: ") || strings.Count(says, " expected\n") != 6 || !strings.Contains(says, "part 6: ") {
+		t.Errorf("seed %d: %s", seed, says)
+	}
+	for _, c := range []struct {
+		args []string
+		says string
+	}{
+		{[]string{"--every", "-1"}, "--every is -1"},
+		{[]string{"--least", "2"}, "--least is 2"},
+		{[]string{"--parts", "5000"}, "--parts is 5000"},
+		{[]string{"--suite", "truck"}, "the suite describes no road"},
+	} {
+		errs.Reset()
+		if status := run(append([]string{"traffic", drive}, c.args...), &out, &errs); status != exitBad || !strings.Contains(errs.String(), c.says) {
+			t.Errorf("%v: status %d: %s", c.args, status, errs.String())
+		}
+	}
+}
