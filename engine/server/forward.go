@@ -221,8 +221,11 @@ func (s *Server) passOn(ctx context.Context, there grpc.BidiStreamingClient[lead
 				}
 				return r.err
 			}
-			if there.Send(r.message) != nil {
-				return nil // Recv has why
+			if err := there.Send(r.message); err != nil {
+				if errors.Is(err, io.EOF) || ctx.Err() != nil {
+					return nil // Recv has why
+				}
+				return err
 			}
 		case <-s.draining:
 			_ = there.CloseSend()

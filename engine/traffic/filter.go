@@ -21,7 +21,6 @@ type Filter struct {
 	now     sensor.Time
 	started bool
 	work    work
-	hidden  heardAs
 	last    uint64 // label
 	account Account
 	notes   []string
