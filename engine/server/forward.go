@@ -221,10 +221,10 @@ func (s *Server) passOn(ctx context.Context, there grpc.BidiStreamingClient[lead
 				}
 				return r.err
 			}
-			if err := there.Send(r.message); err != nil {
-				if errors.Is(err, io.EOF) || ctx.Err() != nil {
-					return nil // Recv has why
-				}
+			switch err := there.Send(r.message); {
+			case errors.Is(err, io.EOF), ctx.Err() != nil:
+				return nil // Recv has why
+			case err != nil:
 				return err
 			}
 		case <-s.draining:
