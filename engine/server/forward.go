@@ -221,10 +221,11 @@ func (s *Server) passOn(ctx context.Context, there grpc.BidiStreamingClient[lead
 				}
 				return r.err
 			}
-			switch err := there.Send(r.message); {
-			case errors.Is(err, io.EOF), ctx.Err() != nil:
+			err := there.Send(r.message)
+			if errors.Is(err, io.EOF) {
 				return nil // Recv has why
-			case err != nil:
+			}
+			if err != nil && ctx.Err() == nil {
 				return err
 			}
 		case <-s.draining:
