@@ -275,6 +275,9 @@ func TestReadmeExamples(t *testing.T) {
 // TestReadmeCommandLines runs the commands of the README's chapter on own data
 // that need no server, with their folder /tmp replaced.
 func TestReadmeCommandLines(t *testing.T) {
+	if testing.Short() {
+		t.Skip("filters for long: not with -short")
+	}
 	page := readPage(t, "README.md")
 	_, page, _ = strings.Cut(page, "\n## Your own data")
 	page, _, _ = strings.Cut(page, "\n## ")

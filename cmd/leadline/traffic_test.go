@@ -13,6 +13,9 @@ import (
 // TestTraffic: counts are those of the world, pictures come in the text form, and
 // what cannot be used is said while the rest goes on.
 func TestTraffic(t *testing.T) {
+	if testing.Short() {
+		t.Skip("filters for long: not with -short")
+	}
 	const seed = 1
 	s, err := scenes.Traffic(seed)
 	if err != nil {
