@@ -21,10 +21,17 @@ import (
 // hashBelief writes every bit that a belief consists of.
 func hashBelief(b *filter.Belief) string {
 	h := sha256.New()
-	for _, v := range []any{
+	parts := []any{
 		int64(b.Level), b.Lattice, b.Key, b.Mass, b.Mean, b.Cov,
 		b.Tiles.At, b.Tiles.Mass, b.Tiles.Surplus, b.Pruned, b.LeftMap,
-	} {
+	}
+	if v := &b.Slices; len(v.At) > 0 {
+		parts = append(parts, v.SpacingM, v.SpacingMPS, v.BaseMPS, v.Low, v.OriginM[0], v.OriginM[1], v.At, v.Scale, v.Pending)
+		for _, r := range v.Rows {
+			parts = append(parts, r.Col, r.Len, v.Mass[r.Start:r.Start+int(r.Len)])
+		}
+	}
+	for _, v := range parts {
 		if err := binary.Write(h, binary.LittleEndian, v); err != nil {
 			panic(err)
 		}
@@ -33,7 +40,7 @@ func hashBelief(b *filter.Belief) string {
 }
 
 // scripted runs a fixed script over a line and over planes with and without
-// quantities; it returns the hashes of the beliefs. It uses only likelihoods
+// quantities and velocity axes; it returns the hashes of the beliefs. It uses only likelihoods
 // without transcendental functions of their own.
 func scripted() (lines []string) {
 	for _, c := range []struct {
@@ -45,6 +52,7 @@ func scripted() (lines []string) {
 		{"fork", fork(), filter.Anywhere{}, []filter.Quantity{{Name: filter.Along}, {Name: filter.OdometerScale, PriorVar: 1e-2}}},
 		{"lattice", plane.Open(geo.FromDegrees(7, 47), 500, 5), filter.AtPoint{SigmaM: 12}, nil},
 		{"plane", plane.Open(geo.FromDegrees(7, 47), 500, 5), filter.AtPoint{SigmaM: 6}, []filter.Quantity{{Name: filter.East}, {Name: filter.North}, {Name: filter.Heading, Angular: true, PriorVar: 10}}},
+		{"velocities", plane.Open(geo.FromDegrees(7, 47), 500, 5), filter.AtPoint{SigmaM: 12}, velocityAxes(geo.Point{E: 2, N: -1}, 1.5)},
 	} {
 		b, err := filter.Seed(c.space, c.prior, c.qs, 1<<14)
 		if err != nil {
@@ -56,7 +64,9 @@ func scripted() (lines []string) {
 			x := float64(i)
 			step := filter.NewStep(max(b.K(), b.Dim))
 			step.Add[0], step.Q[0] = 0.37+x/8, 0.21
-			if b.K() > 1 {
+			if len(b.Slices.At) > 0 {
+				step = coasting(1, 0.2)
+			} else if b.K() > 1 {
 				step.SetF(0, b.K()-1, 0.3)
 			}
 			if b.Dim == 2 {

@@ -12,19 +12,7 @@ import (
 // as a surplus below 0.
 func (b *Belief) margin(ss *sliceSpace) *Belief {
 	s, m := &b.Slices, &ss.margin
-	lo, hi := [2]float64{math.Inf(1), math.Inf(1)}, [2]float64{math.Inf(-1), math.Inf(-1)}
-	for i := range s.At {
-		c := &s.At[i]
-		oE, oN := s.origin(0, c.East), s.origin(1, c.North)
-		lo[1] = math.Min(lo[1], oN+float64(s.SpacingM[1]*float64(c.Row)))
-		hi[1] = math.Max(hi[1], oN+float64(s.SpacingM[1]*float64(c.Row+c.Count)))
-		for _, r := range s.Rows[c.First : c.First+c.Count] {
-			if r.Len > 0 {
-				lo[0] = math.Min(lo[0], oE+float64(s.SpacingM[0]*float64(r.Col)))
-				hi[0] = math.Max(hi[0], oE+float64(s.SpacingM[0]*float64(r.Col+r.Len)))
-			}
-		}
-	}
+	lo, hi := s.box()
 	cols := int(math.Ceil((hi[0]-lo[0])/s.SpacingM[0])) + 4
 	rows := int(math.Ceil((hi[1]-lo[1])/s.SpacingM[1])) + 4
 	origin := geo.Point{E: lo[0] - 2*s.SpacingM[0], N: lo[1] - 2*s.SpacingM[1]}
@@ -92,7 +80,7 @@ func (ss *sliceSpace) marginOf(s *Slices, i int32, flat []float64, cols, rows in
 	if sum == nil {
 		return
 	}
-	t := (s.OriginM[0][ss.low[0]+i-s.Low[0]]-origin.E)/s.SpacingM[0] + float64(col)
+	t := (s.origin(0, ss.low[0]+i)-origin.E)/s.SpacingM[0] + float64(col)
 	m := math.Floor(t)
 	for q, share := range sharesOf(t-m, 0) {
 		first := int(m) + q - 1

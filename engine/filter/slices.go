@@ -94,6 +94,25 @@ func (s *Slices) cells() int {
 	return n
 }
 
+// box is where the outermost cells with mass lie along either axis, from the first
+// cell's place to the one beyond the last.
+func (s *Slices) box() (lo, hi [2]float64) {
+	lo, hi = [2]float64{math.Inf(1), math.Inf(1)}, [2]float64{math.Inf(-1), math.Inf(-1)}
+	for i := range s.At {
+		c := &s.At[i]
+		oE, oN := s.origin(0, c.East), s.origin(1, c.North)
+		lo[1] = math.Min(lo[1], oN+float64(s.SpacingM[1]*float64(c.Row)))
+		hi[1] = math.Max(hi[1], oN+float64(s.SpacingM[1]*float64(c.Row+c.Count)))
+		for _, r := range s.Rows[c.First : c.First+c.Count] {
+			if r.Len > 0 {
+				lo[0] = math.Min(lo[0], oE+float64(s.SpacingM[0]*float64(r.Col)))
+				hi[0] = math.Max(hi[0], oE+float64(s.SpacingM[0]*float64(r.Col+r.Len)))
+			}
+		}
+	}
+	return lo, hi
+}
+
 func (s *Slices) clone() Slices {
 	c := *s
 	for a := range 2 {
@@ -266,3 +285,14 @@ func threeSharesOf(f, v float64) [3]float64 {
 func (s *Slices) CellsApart(t float64) float64 {
 	return math.Max(s.SpacingMPS[0]*t/s.SpacingM[0], s.SpacingMPS[1]*t/s.SpacingM[1])
 }
+
+// total is the sum of the slices' masses, not scaled.
+func (s *Slices) total() (sum float64) {
+	for i := range s.At {
+		sum += s.At[i].Mass
+	}
+	return sum
+}
+
+// rescale makes the masses add up to 1.
+func (s *Slices) rescale() { s.Scale = 1 / s.total() }
