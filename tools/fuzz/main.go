@@ -18,7 +18,10 @@ import (
 	"path"
 	"path/filepath"
 	"regexp"
+	"runtime"
+	"slices"
 	"strings"
+	"sync"
 	"time"
 )
 
@@ -94,7 +97,7 @@ func find(patterns []string, work string) ([]target, error) {
 	if err != nil {
 		return nil, err
 	}
-	var targets []target
+	var with [][2]string // package and folder
 	for line := range strings.Lines(list) {
 		fields := strings.Split(strings.TrimSpace(line), "\t")
 		pkg, dir, files := fields[0], fields[1], fields[2:]
@@ -106,20 +109,37 @@ func find(patterns []string, work string) ([]target, error) {
 			}
 			has = has || declares.Match(text)
 		}
-		if !has {
-			continue
+		if has {
+			with = append(with, [2]string{pkg, dir})
 		}
-		binary := filepath.Join(work, strings.ReplaceAll(path.Clean(pkg), "/", "-")+".test")
-		if _, err := output("", "go", "test", "-c", "-fuzz=.", "-o", binary, pkg); err != nil {
-			return nil, err
-		}
-		names, err := output(dir, binary, "-test.list=^Fuzz")
-		if err != nil {
-			return nil, err
-		}
-		for _, name := range strings.Fields(names) {
-			targets = append(targets, target{pkg, dir, binary, name})
-		}
+	}
+	// Linking keeps one processor busy: so several at once.
+	in, errs := make([][]target, len(with)), make([]error, len(with))
+	free := make(chan struct{}, runtime.GOMAXPROCS(0))
+	var builds sync.WaitGroup
+	for i, of := range with {
+		builds.Go(func() {
+			free <- struct{}{}
+			in[i], errs[i] = targetsOf(of[0], of[1], work)
+			<-free
+		})
+	}
+	builds.Wait()
+	return slices.Concat(in...), errors.Join(errs...)
+}
+
+// targetsOf builds a package's targets.
+func targetsOf(pkg, dir, work string) (targets []target, err error) {
+	binary := filepath.Join(work, strings.ReplaceAll(path.Clean(pkg), "/", "-")+".test")
+	if _, err := output("", "go", "test", "-c", "-fuzz=.", "-o", binary, pkg); err != nil {
+		return nil, err
+	}
+	names, err := output(dir, binary, "-test.list=^Fuzz")
+	if err != nil {
+		return nil, err
+	}
+	for _, name := range strings.Fields(names) {
+		targets = append(targets, target{pkg, dir, binary, name})
 	}
 	return targets, nil
 }
