@@ -35,15 +35,8 @@ func (s *Server) EraseVehicle(ctx context.Context, req *leadlinev1.EraseVehicleR
 	ended := make(chan end, 1)
 	go func() {
 		defer s.ended.Done()
-		whole, cancel := context.WithCancel(context.WithoutCancel(ctx))
+		whole, cancel := s.untilDraining(context.WithoutCancel(ctx))
 		defer cancel()
-		go func() {
-			select {
-			case <-s.draining:
-				cancel()
-			case <-whole.Done():
-			}
-		}()
 		resp, err := s.erase(whole, vehicle, o, marker)
 		if err != nil {
 			s.cfg.Log.Error("vehicle cannot be erased", "vehicle", vehicle, "error", err)

@@ -48,29 +48,30 @@ func (s *Server) peer(ctx context.Context, at share.Server) (leadlinev1.Position
 	return leadlinev1.NewPositionServiceClient(c), nil
 }
 
+// onePass passes one call on to another server.
+type onePass func(ctx context.Context, c leadlinev1.PositionServiceClient, req any) (proto.Message, error)
+
+func passing[Req, Resp proto.Message](call func(leadlinev1.PositionServiceClient, context.Context, Req, ...grpc.CallOption) (Resp, error)) onePass {
+	return func(ctx context.Context, c leadlinev1.PositionServiceClient, req any) (proto.Message, error) {
+		return call(c, ctx, req.(Req))
+	}
+}
+
 // routed has calls that concern one vehicle answered by the server that serves it.
 func (s *Server) routed(method string, handle grpc.UnaryHandler) grpc.UnaryHandler {
 	if s.shared == nil {
 		return handle
 	}
-	var pass func(context.Context, leadlinev1.PositionServiceClient, any) (proto.Message, error)
+	var pass onePass
 	switch method {
 	case leadlinev1.PositionService_Trail_FullMethodName:
-		pass = func(ctx context.Context, c leadlinev1.PositionServiceClient, req any) (proto.Message, error) {
-			return c.Trail(ctx, req.(*leadlinev1.TrailRequest))
-		}
+		pass = passing(leadlinev1.PositionServiceClient.Trail)
 	case leadlinev1.PositionService_AddSighting_FullMethodName:
-		pass = func(ctx context.Context, c leadlinev1.PositionServiceClient, req any) (proto.Message, error) {
-			return c.AddSighting(ctx, req.(*leadlinev1.AddSightingRequest))
-		}
+		pass = passing(leadlinev1.PositionServiceClient.AddSighting)
 	case leadlinev1.PositionService_EndDrive_FullMethodName:
-		pass = func(ctx context.Context, c leadlinev1.PositionServiceClient, req any) (proto.Message, error) {
-			return c.EndDrive(ctx, req.(*leadlinev1.EndDriveRequest))
-		}
+		pass = passing(leadlinev1.PositionServiceClient.EndDrive)
 	case leadlinev1.PositionService_EraseVehicle_FullMethodName:
-		pass = func(ctx context.Context, c leadlinev1.PositionServiceClient, req any) (proto.Message, error) {
-			return c.EraseVehicle(ctx, req.(*leadlinev1.EraseVehicleRequest))
-		}
+		pass = passing(leadlinev1.PositionServiceClient.EraseVehicle)
 	default:
 		return handle
 	}

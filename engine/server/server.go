@@ -242,3 +242,16 @@ func (s *Server) stopOwners() {
 	}
 	clear(s.owners)
 }
+
+// untilDraining is a context that ends when streams should, too.
+func (s *Server) untilDraining(ctx context.Context) (context.Context, context.CancelFunc) {
+	ctx, cancel := context.WithCancel(ctx)
+	go func() {
+		select {
+		case <-s.draining:
+			cancel()
+		case <-ctx.Done():
+		}
+	}()
+	return ctx, cancel
+}

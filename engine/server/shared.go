@@ -95,15 +95,8 @@ func (s *Server) join() error {
 	defer s.mu.Unlock()
 	s.shared.Share = joined
 	s.shared.storing.Go(func() {
-		whole, cancel := context.WithCancel(context.Background())
+		whole, cancel := s.untilDraining(context.Background())
 		defer cancel()
-		go func() {
-			select {
-			case <-s.draining:
-				cancel()
-			case <-whole.Done():
-			}
-		}()
 		s.shareMaps(whole)
 	})
 	s.cfg.Log.Info("shares the journal", "server", self.ID, "address", self.Address, "partitions", s.journal.Partitions())
