@@ -255,4 +255,3 @@ func wrongRevision(err error) bool {
 	var api *jetstream.APIError
 	return errors.As(err, &api) && api.ErrorCode == jetstream.JSErrCodeStreamWrongLastSequence
 }
-
