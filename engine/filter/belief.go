@@ -35,6 +35,26 @@ type Belief struct {
 	Restarted float64
 }
 
+// Clip gives back the memory that the columns have beyond what they hold.
+func (b *Belief) Clip() {
+	clip(&b.Key)
+	clip(&b.Mass)
+	clip(&b.Mean)
+	clip(&b.Cov)
+	clip(&b.Tiles.At)
+	clip(&b.Tiles.Mass)
+	clip(&b.Slices.At)
+	clip(&b.Slices.Rows)
+	clip(&b.Slices.Mass)
+}
+
+// clip leaves an eighth more than what there is.
+func clip[T any](column *[]T) {
+	if n := len(*column); cap(*column) > n+n/8+8 {
+		*column = append(make([]T, 0, n), *column...)
+	}
+}
+
 // Gaussians are the columns of a belief, one entry a Gaussian, in ascending
 // order of Key; a cell holds a few of them side by side. The masses sum to 1
 // between calls.

@@ -156,6 +156,7 @@ func (o *owner) run() {
 		if !o.rec.busy() { // a stream is told what is in
 			attach = o.attach
 		}
+		o.rest()
 		select {
 		case <-o.quit:
 			return
@@ -179,6 +180,14 @@ func (o *owner) run() {
 		case <-gone:
 			o.at, o.out = nil, nil
 		}
+	}
+}
+
+// rest has the session give back what it works with, unless who follows has yet to be
+// told what it has just seen.
+func (o *owner) rest() {
+	if r, can := o.sess.(interface{ Rest() }); can && len(o.subject.poke) == 0 {
+		r.Rest()
 	}
 }
 

@@ -51,6 +51,7 @@ type Server struct {
 	// uploads is nil where none are taken; uploading holds a token each.
 	uploads   *Uploads
 	uploading chan struct{}
+	desks     session.Desks // of all sessions
 
 	draining chan struct{} // closed when streams should end
 	drain    sync.Once

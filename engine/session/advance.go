@@ -229,7 +229,7 @@ func (s *Session) adapt() {
 	if s.lines == nil {
 		for range maxAdaptations {
 			// A lattice is changed by one halving or doubling a time.
-			if !filter.Adapt(b, s.maxCells, &s.work) || len(b.Quantities) == 0 {
+			if !filter.Adapt(b, s.maxCells, &s.desk().work) || len(b.Quantities) == 0 {
 				break
 			}
 		}
@@ -238,8 +238,8 @@ func (s *Session) adapt() {
 	n := b.Cells()
 	switch {
 	case n > s.maxCells && b.Level < s.lines.Levels()-1:
-		filter.Relevel(b, s.lines, b.Level+1, &s.work)
+		filter.Relevel(b, s.lines, b.Level+1, &s.desk().work)
 	case n < s.maxCells/refineShare && b.Level > 0 && s.state.gapAgeS == 0:
-		filter.Relevel(b, s.lines, b.Level-1, &s.work)
+		filter.Relevel(b, s.lines, b.Level-1, &s.desk().work)
 	}
 }

@@ -33,13 +33,6 @@ func (s *Session) Ahead() (*Ahead, error) {
 		state: s.state.clone(), accepted: s.accepted, refused: s.refused,
 	}
 	c.motion.Suite = s.suite
-	c.work.Depart(c.rates.off > 0)
-	v := s.suite.Vehicle
-	var err error
-	c.sum, err = summary.New(summary.Options{AlertLimitM: v.AlertLimitM, IntegrityRisk: v.IntegrityRisk, LateralSigmaM: v.LateralSigmaM})
-	if err != nil {
-		panic(fmt.Sprintf("session: %v", err)) // New has made one of them
-	}
 	return &Ahead{s: c}, nil
 }
 
@@ -79,7 +72,7 @@ func (a *Ahead) Carry(to sensor.Time) (*summary.Posterior, error) {
 	}
 	s.fresh = false
 	p := &summary.Posterior{}
-	if err := s.read(s.sum, p); err != nil {
+	if err := s.read(&s.desk().sum, p); err != nil {
 		panic(fmt.Sprintf("session: %v", err)) // a belief is never empty
 	}
 	p.GapS, p.LostAlarm = st.gapS, st.aside.alarm
@@ -129,7 +122,7 @@ func (s *Session) wander(to sensor.Time) {
 		q := whole.Q[0] * float64(piece-st.time) / float64(to-st.time)
 		sigma := math.Sqrt(q)
 		for l := st.belief.Level + 1; l < s.lines.Levels() && s.cellsM[l] <= 2*sigma; l++ {
-			filter.Relevel(st.belief, s.lines, l, &s.work)
+			filter.Relevel(st.belief, s.lines, l, &s.desk().work)
 		}
 		parts := math.Max(1, q/(partM*partM))
 		made += float64(st.belief.Cells()) * parts * (1 + 12*math.Min(sigma, partM)/s.cellM())

@@ -80,7 +80,6 @@ func (s *Session) setRates() {
 		s.rates.off = 0 // nobody knows where it goes, or how it comes back
 	}
 	s.state.aside.loose = loose
-	s.work.Depart(s.rates.off > 0)
 	if s.rates.lost > 0 || s.rates.moved > 0 {
 		s.areaM2 = s.extent()
 	}
@@ -124,7 +123,7 @@ func (s *Session) moveAside() {
 		if err != nil {
 			panic("session: " + err.Error()) // it has a heading
 		}
-		a.loose.Predict(step, &s.work)
+		a.loose.Predict(step, &s.desk().work)
 	}
 	if s.rates.off > 0 {
 		s.exchange(travelled)
@@ -155,10 +154,7 @@ func (s *Session) exchange(travelledM float64) {
 	st := &s.state
 	a, v := &st.aside, &s.suite.Vehicle
 	lateral := v.LateralSigmaM * v.LateralSigmaM
-	part := filter.Loose{Quantities: a.loose.Quantities}
-	if share := st.belief.Departed(&part, s.lines, lateral, mostLoose, &s.work); share > 0 {
-		s.leave(&part, share)
-	}
+	s.takeDeparted(lateral)
 	a.roadM += travelledM
 	// Coming back costs a pass over the belief: a wide one is passed over as much
 	// less often as it is wide.
@@ -169,13 +165,22 @@ func (s *Session) exchange(travelledM float64) {
 	a.roadM = 0
 	if a.off >= smallShare {
 		e := filter.Entry{Hazard: s.rates.in * way, LateralVar: enterSigmaM * enterSigmaM, HeadingVar: enterRad * enterRad}
-		_, off := a.loose.Enter(st.belief, s.near, e, a.on(), a.off, &s.work)
+		_, off := a.loose.Enter(st.belief, s.near, e, a.on(), a.off, &s.desk().work)
 		a.off = off
+		s.takeDeparted(lateral)
 	}
 	if st.belief.Cells() < s.wideSize && a.on() > leastOn {
 		part := filter.Loose{Quantities: a.loose.Quantities}
-		st.belief.Loosen(&part, s.lines, lateral, mostLoose, &s.work)
+		st.belief.Loosen(&part, s.lines, lateral, mostLoose, &s.desk().work)
 		s.leave(&part, 1-kernel.Exp(-s.rates.off*way))
+	}
+}
+
+// takeDeparted has what has gone over the ends of roads leave them.
+func (s *Session) takeDeparted(lateralM2 float64) {
+	part := filter.Loose{Quantities: s.state.aside.loose.Quantities}
+	if share := s.state.belief.Departed(&part, s.lines, lateralM2, mostLoose, &s.desk().work); share > 0 {
+		s.leave(&part, share)
 	}
 }
 
@@ -246,7 +251,7 @@ func (s *Session) weighOff(ev sensor.Event, c sensor.Context, of any) float64 {
 	if len(ls) == 0 {
 		return flat
 	}
-	e, err := a.loose.Update(offRoads{s.space}, ls[0], &s.work)
+	e, err := a.loose.Update(offRoads{s.space}, ls[0], &s.desk().work)
 	if errors.Is(err, filter.ErrContradiction) {
 		return math.Inf(-1)
 	}

@@ -15,7 +15,7 @@ import (
 func (s *Session) summarise() *summary.Posterior {
 	st := &s.state
 	p := &summary.Posterior{}
-	if err := s.read(s.sum, p); err != nil {
+	if err := s.read(&s.desk().sum, p); err != nil {
 		panic(fmt.Sprintf("session: %v", err)) // a belief is never empty
 	}
 	p.GapS = st.gapS
@@ -35,12 +35,13 @@ func (s *Session) summarise() *summary.Posterior {
 func (s *Session) read(sum *summary.Summarizer, dst *summary.Posterior) error {
 	st := &s.state
 	b := st.belief
-	b.Read(&s.cloud, s.space, &s.work)
+	d := s.desk()
+	b.Read(&d.cloud, s.space, &d.work)
 	if v, ok := s.velocity(); ok {
 		st.speed = v
 	}
 	in := summary.Input{
-		TimeNS: int64(st.time), Frame: s.space.Frame(), Belief: b, Cloud: &s.cloud,
+		TimeNS: int64(st.time), Frame: s.space.Frame(), Belief: b, Cloud: &d.cloud,
 		Speed: st.speed, Evidence: st.evidence, LogEvidence: st.logEvidence,
 		Accepted: st.processed, Refused: s.refused, RestartMass: b.Restarted,
 		Contradicted: st.monitor.Contradicted(), Alarms: st.monitor.Alarms(), Sensors: st.monitor.Sensors(),
@@ -65,7 +66,8 @@ const groundRun = 1024
 // beyond is how much of the belief lies where a plane's map ends or knows no
 // height; nothing of one that has left the roads.
 func (s *Session) beyond(p filter.PlaneSpace) float64 {
-	c := &s.cloud
+	d := s.desk()
+	c := &d.cloud
 	off, all := 0.0, 0.0
 	switch h, ok := p.(interface{ HasHeights() bool }); {
 	case !ok:
@@ -73,13 +75,13 @@ func (s *Session) beyond(p filter.PlaneSpace) float64 {
 	case h.HasHeights():
 		for i := 0; i < len(c.Mass); i += groundRun {
 			run := c.Mass[i:min(i+groundRun, len(c.Mass))]
-			s.ground.Resize(filter.WantHeight, 2, len(run))
-			copy(s.ground.East, c.East[i:])
-			copy(s.ground.North, c.North[i:])
-			p.Sample(&s.ground)
+			d.ground.Resize(filter.WantHeight, 2, len(run))
+			copy(d.ground.East, c.East[i:])
+			copy(d.ground.North, c.North[i:])
+			p.Sample(&d.ground)
 			for j, m := range run {
 				all += m
-				if h := s.ground.Height[j]; h != h {
+				if h := d.ground.Height[j]; h != h {
 					off += m
 				}
 			}
@@ -102,11 +104,11 @@ func (s *Session) beyond(p filter.PlaneSpace) float64 {
 // refresh has the summarizer look at the present belief, if that has moved on
 // since the last posterior. Before the first one there is nothing to ask.
 func (s *Session) refresh() error {
-	if s.fresh || !s.state.begun {
+	if s.desk(); s.fresh || !s.state.begun {
 		return nil
 	}
 	var p summary.Posterior
-	if err := s.read(s.sum, &p); err != nil {
+	if err := s.read(&s.desk().sum, &p); err != nil {
 		return err
 	}
 	s.fresh = true
@@ -120,7 +122,7 @@ func (s *Session) Region(fraction float64) (*summary.Region, error) {
 	if err := s.refresh(); err != nil {
 		return nil, err
 	}
-	return s.sum.Region(fraction)
+	return s.desk().sum.Region(fraction)
 }
 
 // Inside returns the probability of a polygon under the present belief; see
@@ -129,7 +131,7 @@ func (s *Session) Inside(polygon [][]geo.LonLat) (float64, error) {
 	if err := s.refresh(); err != nil {
 		return 0, err
 	}
-	return s.sum.Inside(polygon)
+	return s.desk().sum.Inside(polygon)
 }
 
 // Protection returns the protection radius of the present belief at another

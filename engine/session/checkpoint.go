@@ -56,7 +56,7 @@ var layout = func() uint64 {
 	for _, m := range measurements {
 		parts = append(parts, m)
 	}
-	return exact.Layout(parts, filter.Workspace{}, sensor.Motion{}, filter.Cloud{}, filter.Columns{}, summary.Summarizer{}, sensor.Suite{})
+	return exact.Layout(parts, desk{}, Desks{}, sensor.Motion{}, sensor.Suite{})
 }()
 
 // Checkpoint returns the session in bytes.

@@ -133,7 +133,7 @@ func TestFieldsOfCheckpoints(t *testing.T) {
 		v      any
 		fields int
 	}{
-		{Session{}, 52},
+		{Session{}, 50},
 		{state{}, 20},
 		{aside{}, 10},
 		{snapshot{}, 3},

@@ -121,8 +121,8 @@ func TestGapsAreCutAtTheirEnds(t *testing.T) {
 	d := 10 + 20 + 2.5 + 2.5 + 6.0
 	variance += measured + 0.02*0.02*d*d + 0.15*0.15*d
 	start := open(t, Config{Space: road, Suite: onRoads(), Start: pointStart(road, geo.Point{N: 1000}, 5)})
-	_, _, cov := start.state.belief.Moments(road, &start.work)
-	_, _, got := want.state.belief.Moments(road, &want.work)
+	_, _, cov := start.state.belief.Moments(road, &start.desk().work)
+	_, _, got := want.state.belief.Moments(road, &want.desk().work)
 	// The scale's drift gives 1e-10·d²·9 = 2e-6 m², of 800.
 	if math.Abs(got[2]-cov[2]-variance) > 1e-5*variance {
 		t.Errorf("the variance grows by %v m², want %v", got[2]-cov[2], variance)

@@ -185,9 +185,9 @@ func (l *looker) stretch(from cut, until int, later *known, give bool) (*known, 
 func (l *looker) resume(c cut) {
 	s := l.s
 	s.state, s.log.next, s.fresh = c.state.clone(), c.next, false
-	s.work.Release()
+	s.desk().work.Release()
 	l.begin, l.marks = c, nil
-	s.work.Record(&l.tape, s.state.belief)
+	s.desk().work.Record(&l.tape, s.state.belief)
 }
 
 // fold cuts the drive here and begins another tape.
@@ -204,7 +204,7 @@ func (l *looker) fold() {
 		next.best = all[len(all)-1]
 	}
 	l.begin, l.marks = next, nil
-	l.s.work.Record(&l.tape, b)
+	l.s.desk().work.Record(&l.tape, b)
 }
 
 // mark keeps a posterior, if there is one.
@@ -238,7 +238,7 @@ func (l *looker) back(later *known, give bool) (*known, error) {
 	k := &known{}
 	k.smoothed = l.known(later, func(k *known) *filter.Belief { return k.smoothed })
 	var at []*filter.Belief // of each mark, where a path wants it
-	l.tape.Smooth(k.smoothed, &l.s.work, see(func(i int, h *filter.Belief) {
+	l.tape.Smooth(k.smoothed, &l.s.desk().work, see(func(i int, h *filter.Belief) {
 		m := &l.marks[i]
 		out[i].Filtered, out[i].Smoothed = m.p, l.read(m, h)
 		if l.Path && l.s.lines == nil {
@@ -253,7 +253,7 @@ func (l *looker) back(later *known, give bool) (*known, error) {
 		if later == nil {
 			ways[len(ways)-1].Restrict(k.along)
 		}
-		l.tape.SmoothAlong(k.along, ways, &l.s.work, see(func(i int, h *filter.Belief) {
+		l.tape.SmoothAlong(k.along, ways, &l.s.desk().work, see(func(i int, h *filter.Belief) {
 			out[i].Path = l.read(&l.marks[i], h)
 		}))
 	default:
@@ -298,9 +298,10 @@ func (l *looker) read(m *mark, h *filter.Belief) *summary.Posterior {
 	s := l.s
 	b := h.Present()
 	b.Pruned, b.LeftMap, b.Restarted = m.pruned, m.left, m.restarted
-	b.Read(&s.cloud, s.space, &s.work)
+	d := s.desk()
+	b.Read(&d.cloud, s.space, &d.work)
 	in := summary.Input{
-		TimeNS: m.p.TimeNS, Frame: s.space.Frame(), Belief: b, Cloud: &s.cloud,
+		TimeNS: m.p.TimeNS, Frame: s.space.Frame(), Belief: b, Cloud: &d.cloud,
 		Speed: m.p.Speed, LogEvidence: m.p.LogEvidence, Accepted: m.p.Counts.Accepted, Refused: m.p.Counts.Refused,
 		RestartMass: b.Restarted, Contradicted: m.p.Status == summary.Contradicted, Alarms: m.p.Alarms, Sensors: m.p.Sensors,
 		Off: m.off, Lost: m.lost,
@@ -315,7 +316,7 @@ func (l *looker) read(m *mark, h *filter.Belief) *summary.Posterior {
 		in.Names = s.names
 	}
 	p := &summary.Posterior{}
-	if err := s.sum.Summarize(p, &in); err != nil {
+	if err := d.sum.Summarize(p, &in); err != nil {
 		panic("session: " + err.Error()) // a belief is never empty
 	}
 	p.GapS, p.LostAlarm = m.p.GapS, m.p.LostAlarm

@@ -20,14 +20,14 @@ func (s *Session) weigh(ev sensor.Event, l any) {
 	withheld := !s.unguarded && st.monitor.Isolated(key)
 	var fell filter.Predictive
 	if s.watchable(ev, key) {
-		s.work.Foretell(&fell)
+		s.desk().work.Foretell(&fell)
 	}
 	var e float64
 	var err error
 	if withheld {
-		e, err = filter.Try(st.belief, s.space, l, &s.work)
+		e, err = filter.Try(st.belief, s.space, l, &s.desk().work)
 	} else {
-		e, err = filter.UpdateWithin(st.belief, s.space, l, s.maxCells, &s.work)
+		e, err = filter.UpdateWithin(st.belief, s.space, l, s.maxCells, &s.desk().work)
 	}
 	impossible := errors.Is(err, filter.ErrContradiction)
 	if impossible {

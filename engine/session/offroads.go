@@ -34,8 +34,9 @@ func (offRoads) Sample(dst *filter.Columns) {
 // is added become one, with their moments.
 func (s *Session) leaveRoads(addM2 float64) {
 	b := s.state.belief
-	b.Read(&s.cloud, s.space, &s.work)
-	c := &s.cloud
+	d := s.desk()
+	b.Read(&d.cloud, s.space, &d.work)
+	c := &d.cloud
 	s.appendLoose(c)
 	lateral := s.suite.Vehicle.LateralSigmaM * s.suite.Vehicle.LateralSigmaM
 	h := math.Max(math.Sqrt(addM2)/4, 1)

@@ -140,7 +140,7 @@ func (s *Session) turnHere() {
 	if st.time.Seconds(st.posteriorAt) < turnEveryS {
 		return
 	}
-	_, at, _ := st.belief.Moments(s.space, &s.work)
+	_, at, _ := st.belief.Moments(s.space, &s.desk().work)
 	st.pose = sensor.Pose{At: at, HeadingVar: sensor.NoHeading}
 	st.evidence, st.posteriorAt = nil, st.time
 }
@@ -158,8 +158,7 @@ func (s *Session) fork() *Session {
 	for i := range c.log.sources {
 		c.log.sources[i].events = slices.Clone(s.log.sources[i].events)
 	}
-	c.work, c.cloud, c.snaps, c.cuts = filter.Workspace{}, filter.Cloud{}, nil, nil
-	c.work.Depart(c.rates.off > 0)
+	c.own, c.desks, c.snaps, c.cuts = nil, nil, nil, nil
 	c.motion = sensor.Motion{Suite: c.suite}
 	return &c
 }
@@ -179,8 +178,8 @@ func (s *Session) letIn(x *search) {
 	f.runUntil(st.time)
 	if b := f.state.belief; b.Level != st.belief.Level {
 		level := max(b.Level, st.belief.Level)
-		filter.Relevel(b, s.lines, level, &s.work)
-		filter.Relevel(st.belief, s.lines, level, &s.work)
+		filter.Relevel(b, s.lines, level, &s.desk().work)
+		filter.Relevel(st.belief, s.lines, level, &s.desk().work)
 	}
 	on, lost := a.on(), a.lost
 	found := &f.state.aside
@@ -188,7 +187,7 @@ func (s *Session) letIn(x *search) {
 		a.loose.Mix(&found.loose, gain/(a.off+gain), mostLoose)
 		a.off += gain
 	}
-	filter.Blend(st.belief, f.state.belief, lost*(1-found.off)/(on+lost*(1-found.off)), s.lines, &s.work)
+	filter.Blend(st.belief, f.state.belief, lost*(1-found.off)/(on+lost*(1-found.off)), s.lines, &s.desk().work)
 	a.lost = 0
 	st.pace.stretches = st.pace.stretches[:0] // the scale is another one, perhaps
 }

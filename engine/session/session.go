@@ -31,6 +31,9 @@ type Config struct {
 	// anybody else has, and returns what waits for its end; nil has it done when
 	// its end is waited for. See search.go.
 	Begin func(work func()) (wait func())
+	// Desks, if set, is what the session works with, beside others. Who has it rests
+	// it (Rest) after each piece of work.
+	Desks *Desks
 	// Unguarded has the measurements of isolated sensors used, too: for studies
 	// that compare the evidence of suites of which some are wrong. What is isolated
 	// would be left out of the sum, and the worst suite have the least to answer for.
@@ -155,13 +158,11 @@ type Session struct {
 	state  state
 	snaps  []snapshot
 	log    log
-	work   filter.Workspace
 	motion sensor.Motion
 	cuts   []sensor.Time
-	cloud  filter.Cloud
-	ground filter.Columns // under the cloud, on a plane
-	sum    *summary.Summarizer
-	fresh  bool                 // sum has seen the present belief
+	own    *desk                // nil: the session rests
+	desks  *Desks               // where it comes from, nil: made for this session
+	fresh  bool                 // the desk's sum has seen the present belief
 	recent []*summary.Posterior // by time; the first final of them are final
 	final  int
 	// superseded are posteriors that a late event took back, latest first.
@@ -217,7 +218,7 @@ func prepare(c Config) (*Session, error) {
 	}
 	s := &Session{
 		vehicle: c.Vehicle, space: c.Space, names: c.Names, dim: 2, maxCells: c.MaxCells, hasher: summary.NewHasher(),
-		beginWork: c.Begin, unguarded: c.Unguarded, wideSize: wideSize, hugeSize: hugeSize, strideM: strideM, maxWaiting: maxWaiting,
+		beginWork: c.Begin, desks: c.Desks, unguarded: c.Unguarded, wideSize: wideSize, hugeSize: hugeSize, strideM: strideM, maxWaiting: maxWaiting,
 	}
 	if s.maxCells == 0 {
 		s.maxCells = defaultMaxCells
@@ -242,9 +243,7 @@ func prepare(c Config) (*Session, error) {
 	v := s.suite.Vehicle
 	s.hold = sensor.Time(v.HoldS * 1e9)
 	s.still = sensor.Time(min(standstillS, v.LateWindowS/2) * 1e9)
-	var err error
-	s.sum, err = summary.New(summary.Options{AlertLimitM: v.AlertLimitM, IntegrityRisk: v.IntegrityRisk, LateralSigmaM: v.LateralSigmaM})
-	if err != nil {
+	if err := s.shown().Validate(); err != nil {
 		return nil, err
 	}
 	if qs := s.suite.Quantities(s.dim); s.dim == 2 && (len(qs) == 0 || gridded(qs)) {
@@ -284,7 +283,7 @@ func (s *Session) Cells() (level int, l filter.Lattice) {
 }
 
 // ReadBelief spells out the present belief.
-func (s *Session) ReadBelief(dst *filter.Cloud) { s.state.belief.Read(dst, s.space, &s.work) }
+func (s *Session) ReadBelief(dst *filter.Cloud) { s.state.belief.Read(dst, s.space, &s.desk().work) }
 
 // Size is the number of cells or Gaussians that the belief holds now.
 func (s *Session) Size() int { return s.state.belief.Cells() }

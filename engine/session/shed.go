@@ -11,11 +11,13 @@ const (
 
 func (s *Session) shed() {
 	n := s.state.belief.Cells()
+	d := s.desk()
+	d.widest = max(d.widest, n)
 	if s.widest = max(s.widest, n); s.widest < shedFrom || n > s.widest/shedShare {
 		return
 	}
 	s.Rest()
 	s.state.belief = s.state.belief.Clone()
-	s.work.Follow(s.state.belief)
+	s.desk().work.Follow(s.state.belief)
 	s.widest = n
 }

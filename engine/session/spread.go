@@ -51,19 +51,19 @@ func (s *Session) spread(step filter.Step) {
 	}
 	b := s.state.belief
 	if len(b.Quantities) > 0 { // Predict bounds what it does
-		filter.Predict(b, s.space, step, &s.work)
+		filter.Predict(b, s.space, step, &s.desk().work)
 		return
 	}
 	for left := 1.0; ; {
 		scale := maxWidening * b.ScaleM()
 		share := math.Min(left, scale*scale/math.Max(step.Q[0], step.Q[2]))
-		filter.Predict(b, s.space, portion(step, share), &s.work)
+		filter.Predict(b, s.space, portion(step, share), &s.desk().work)
 		if share == left {
 			return
 		}
 		left -= share
 		for range maxAdaptations {
-			if !filter.Adapt(b, s.maxCells, &s.work) {
+			if !filter.Adapt(b, s.maxCells, &s.desk().work) {
 				break
 			}
 		}
@@ -101,7 +101,7 @@ func (s *Session) spreadOnRoads(step filter.Step) {
 			}
 			s.followed += part
 		}
-		filter.Predict(b, s.space, portion(step, share), &s.work)
+		filter.Predict(b, s.space, portion(step, share), &s.desk().work)
 		if share == left {
 			return
 		}
@@ -127,7 +127,7 @@ const scatterShare = 8
 func (s *Session) scatter(step filter.Step, left, shiftM float64) {
 	k := len(step.Add)
 	varM2 := float64(left*left)*shiftM*shiftM + float64(left*step.Q[0])
-	if err := filter.Scatter(s.state.belief, s.lines, varM2, s.maxCells/scatterShare, &s.work); err != nil {
+	if err := filter.Scatter(s.state.belief, s.lines, varM2, s.maxCells/scatterShare, &s.desk().work); err != nil {
 		panic(fmt.Sprintf("session: %v", err)) // the belief itself is on the roads
 	}
 	// The other quantities' parts: what they gain does not depend on the place.
@@ -138,14 +138,14 @@ func (s *Session) scatter(step filter.Step, left, shiftM float64) {
 			rest.Q[filter.Packed(i, j)] = float64(left * step.Q[filter.Packed(i, j)])
 		}
 	}
-	filter.Predict(s.state.belief, s.space, rest, &s.work)
+	filter.Predict(s.state.belief, s.space, rest, &s.desk().work)
 }
 
 // coarsen takes cells of up to a width.
 func (s *Session) coarsen(cellM float64) {
 	b := s.state.belief
 	for l := b.Level + 1; l < s.lines.Levels() && s.cellsM[l] <= cellM; l++ {
-		filter.Relevel(b, s.lines, l, &s.work)
+		filter.Relevel(b, s.lines, l, &s.desk().work)
 	}
 }
 

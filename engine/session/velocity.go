@@ -59,7 +59,7 @@ func (s *Session) velocity() (summary.Speed, bool) {
 	if mean, variance, ok := b.Moment(filter.Speed); ok {
 		return summary.Speed{Known: true, MPS: mean, SigmaMPS: math.Sqrt(variance)}, true
 	}
-	m, ok := b.State(s.space, &s.work)
+	m, ok := b.State(s.space, &s.desk().work)
 	if !ok {
 		return summary.Speed{}, false
 	}

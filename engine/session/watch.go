@@ -63,18 +63,6 @@ func (s *Session) Summarize(sum *summary.Summarizer, dst *summary.Posterior) err
 	return s.read(sum, dst)
 }
 
-// Rest gives back the memory that a session works with beside its belief, for
-// who keeps many of them; it takes that again when it goes on, as it would have.
-func (s *Session) Rest() {
-	v := s.suite.Vehicle
-	sum, err := summary.New(summary.Options{AlertLimitM: v.AlertLimitM, IntegrityRisk: v.IntegrityRisk, LateralSigmaM: v.LateralSigmaM})
-	if err != nil {
-		panic("session: " + err.Error()) // New made the same
-	}
-	s.cloud, s.sum, s.fresh = filter.Cloud{}, sum, false
-	s.work.Release()
-}
-
 func (s *Session) watched(c Change) {
 	if s.watch != nil {
 		c.Cells = s.Size()

@@ -74,3 +74,51 @@ func TestRest(t *testing.T) {
 		t.Errorf("asked after a rest: %v, %v", p, err)
 	}
 }
+
+// TestDesks proves that sessions of different maps and sizes which work by turns with
+// the same memory compute what each alone does.
+func TestDesks(t *testing.T) {
+	c := newCar(winding(1), 7, func(s float64) float64 { return 30 + 8*s })
+	c.odometer("odo", 0, 0.1, 20)
+	c.gyro("gyro", 0, 0.13, 20)
+	c.fixes("fix", 0.5, 1, 20, 6)
+	var desks Desks
+	var all []*Session
+	var hashes []string
+	var events [][]sensor.Event
+	for _, of := range []struct {
+		config Config
+		events []sensor.Event
+	}{
+		{Config{Space: c.road, Names: c.road, Start: pointStart(c.road, c.road.charted(30), 10)}, inOrder(c.list)},
+		{Config{Space: c.road, Names: c.road}, inOrder(c.list)},
+		{Config{Space: sea(), Start: pointStart(sea(), geo.Point{E: 5, N: 5}, 40), MaxCells: 500}, inOrder(planeEvents(1))},
+		{Config{Space: sea(), Start: pointStart(sea(), geo.Point{E: 5, N: 5}, 400), MaxCells: 5000}, inOrder(planeEvents(2))},
+	} {
+		hashes = append(hashes, feed(t, open(t, of.config), of.events).hash)
+		of.config.Desks = &desks
+		all, events = append(all, open(t, of.config)), append(events, of.events)
+	}
+	for i := 0; ; i++ {
+		left := false
+		for k, s := range all {
+			if i < len(events[k]) {
+				left = true
+				if _, err := s.Add(events[k][i]); err != nil {
+					t.Fatal(err)
+				}
+				s.Rest()
+			}
+		}
+		if !left {
+			break
+		}
+	}
+	for k, s := range all {
+		s.Flush()
+		s.Rest()
+		if s.Hash() != hashes[k] {
+			t.Errorf("session %d: working by turns changed the posteriors", k)
+		}
+	}
+}

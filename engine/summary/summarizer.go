@@ -62,12 +62,18 @@ func New(opt Options) (*Summarizer, error) {
 	if err := opt.Validate(); err != nil {
 		return nil, err
 	}
-	opt = opt.withDefaults()
-	return &Summarizer{
-		opt:        opt,
-		tables:     tables(),
-		tailSigmas: kernel.NormalQuantile(1e-3 * opt.IntegrityRisk),
-	}, nil
+	s := new(Summarizer)
+	s.Set(opt)
+	return s, nil
+}
+
+// Set has a Summarizer, the zero value too, go on with other options, which must be
+// valid.
+func (s *Summarizer) Set(opt Options) {
+	if opt = opt.withDefaults(); s.tables != nil && opt == s.opt {
+		return
+	}
+	s.opt, s.tables, s.tailSigmas = opt, tables(), kernel.NormalQuantile(1e-3*opt.IntegrityRisk)
 }
 
 // Summarize fills dst with the posterior of a belief. It returns ErrEmpty for

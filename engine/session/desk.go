@@ -1,0 +1,71 @@
+package session
+
+import (
+	"sync"
+
+	"leadline/engine/filter"
+	"leadline/engine/summary"
+)
+
+// desk is what a session works with beside its belief: memory whose content means
+// nothing from one use to the next, but for what sum has seen (Session.fresh) and
+// what the workspace records (filter.Workspace.Record).
+type desk struct {
+	work   filter.Workspace
+	cloud  filter.Cloud
+	ground filter.Columns // under the cloud, on a plane
+	sum    summary.Summarizer
+	widest int // the most cells of a belief that it was used for
+}
+
+// Desks are what many sessions work with by turns, who all do little at a time: each
+// takes one when it works, and gives it back by Rest. The zero value is ready.
+type Desks struct{ pool sync.Pool }
+
+// deskCells is up to how many cells the belief of one session may have had for others
+// to go on with its desk: each that works at the same time has one as large.
+const deskCells = 1 << 14
+
+// desk is what the session works with until it rests.
+func (s *Session) desk() *desk {
+	if s.own != nil {
+		return s.own
+	}
+	if s.desks != nil {
+		s.own, _ = s.desks.pool.Get().(*desk)
+	}
+	if s.own == nil {
+		s.own = new(desk)
+	}
+	s.fresh = false
+	s.own.work.Depart(s.rates.off > 0)
+	s.own.sum.Set(s.shown())
+	return s.own
+}
+
+// shown is how posteriors are summed up.
+func (s *Session) shown() summary.Options {
+	v := &s.suite.Vehicle
+	return summary.Options{AlertLimitM: v.AlertLimitM, IntegrityRisk: v.IntegrityRisk, LateralSigmaM: v.LateralSigmaM}
+}
+
+// Rest gives back the memory that a session works with beside its belief, for
+// who keeps many of them; it takes that again when it goes on, as it would have.
+func (s *Session) Rest() {
+	d := s.own
+	if d == nil {
+		return
+	}
+	if s.desks == nil {
+		d.work.Release()
+		*d = desk{work: d.work} // which may record
+		d.sum.Set(s.shown())
+		s.fresh = false
+		return
+	}
+	s.own = nil
+	s.state.belief.Clip()
+	if d.widest <= deskCells {
+		s.desks.pool.Put(d)
+	}
+}
