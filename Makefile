@@ -13,7 +13,7 @@ FUZZ_TIME ?= 60s
 
 # The packages that start goroutines; a test in engine/ compares the list with
 # the code. A tree may be named before it exists.
-RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/livelog/... ./engine/study/sweep ./engine/study/forecast ./engine/study/tune ./engine/journal/... ./cmd/...
+RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/livelog/... ./engine/study/sweep ./engine/study/afar ./engine/study/forecast ./engine/study/tune ./engine/journal/... ./cmd/...
 
 .PHONY: build test race fuzz credibility study local credibility-reach survive bench bench-short benchmarks fetch fetch-arrow fetch-clients fetch-page page page-check generate generate-check vectors \
 	generate-clients generate-clients-check format format-check vet lint lint-only vuln licences licences-check clean

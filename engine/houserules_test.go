@@ -59,6 +59,7 @@ var mayImport = map[string][]string{
 		"engine/session", "engine/traffic", "engine/summary", "engine/monitor", "engine/filter", "engine/sensor",
 		"engine/geo", "engine/drivefile", "engine/logfile", "engine/journal",
 	},
+	"engine/study/afar":     {"engine/study/sweep", "engine/journal", "engine/server/share"},
 	"engine/page":           {api},
 	"cmd/leadline":          {everything},
 	"cmd/leadline/settings": {},
@@ -115,8 +116,12 @@ var protobufLibraries = []string{
 // importsFixtures is the one file outside fixtures that may import them.
 const importsFixtures = "cmd/leadline/demo.go"
 
-// row returns the pattern and the permitted imports of a package.
+// row returns the pattern and the permitted imports of a package: its own row's, if
+// it has one.
 func row(pkg string) (pattern string, allowed []string, ok bool) {
+	if allowed, ok = mayImport[pkg]; ok {
+		return pkg, allowed, true
+	}
 	for _, pattern := range slices.Sorted(maps.Keys(mayImport)) {
 		if matches(pattern, pkg) {
 			return pattern, mayImport[pattern], true

@@ -39,10 +39,7 @@ func (o *keepOptions) flags(c *cobra.Command) {
 	f := c.Flags()
 	f.StringVar(&o.data, "data", "", "folder that keeps measurements durable; nothing is durable without it or --broker")
 	f.StringVar(&o.broker.URL, "broker", "", "NATS servers with JetStream that keep them in place of a folder, as nats://HOST:PORT or tls://HOST:PORT, several with commas")
-	f.StringVar(&o.broker.Credentials, "broker-credentials", "", "file with the user's credentials for the broker")
-	f.StringVar(&o.broker.Authority, "broker-authority", "", "file with the certificates that sign the broker's")
-	f.StringVar(&o.broker.Certificate, "broker-certificate", "", "file with the certificate that is shown to the broker")
-	f.StringVar(&o.broker.Key, "broker-key", "", "file with that certificate's key")
+	brokerFlags(c, &o.broker)
 	f.IntVar(&o.broker.Replicas, "broker-replicas", 1, "how many of the broker's servers keep each record, of a journal that is new")
 	f.Int64Var(&o.mostMiB, "journal-mib", 4096, "greatest size of the journal, MiB; old records that no drive needs go first")
 	f.Int64Var(&o.freeMiB, "journal-free-mib", 256, "what is left free on the disk of --data, MiB: with less, new measurements are refused")
@@ -50,7 +47,17 @@ func (o *keepOptions) flags(c *cobra.Command) {
 	f.StringVar(&o.shareAt, "share", "", "share the broker's journal with other servers, which reach this one at HOST:PORT: each serves a part of the vehicles")
 	f.StringVar(&o.shareAuthority, "share-authority", "", "file with the certificates that sign those of the other servers (default: the system's)")
 	f.IntVar(&o.partitions, "partitions", 0, "in how many parts the vehicles are divided, of a journal that is new: 4, or 64 to share")
-	settable(c, "share", "share-authority", "partitions", "keep-for", "data", "broker", "broker-credentials", "broker-authority", "broker-certificate", "broker-key", "broker-replicas", "journal-mib", "journal-free-mib")
+	settable(c, "share", "share-authority", "partitions", "keep-for", "data", "broker", "broker-replicas", "journal-mib", "journal-free-mib")
+}
+
+// brokerFlags adds the flags of how a broker is reached, beside its address.
+func brokerFlags(c *cobra.Command, b *journal.Broker) {
+	f := c.Flags()
+	f.StringVar(&b.Credentials, "broker-credentials", "", "file with the user's credentials for the broker")
+	f.StringVar(&b.Authority, "broker-authority", "", "file with the certificates that sign the broker's")
+	f.StringVar(&b.Certificate, "broker-certificate", "", "file with the certificate that is shown to the broker")
+	f.StringVar(&b.Key, "broker-key", "", "file with that certificate's key")
+	settable(c, "broker-credentials", "broker-authority", "broker-certificate", "broker-key")
 }
 
 // options are those of the journal; nil where nothing is kept.

@@ -37,8 +37,8 @@ func progress(w io.Writer, task string) (show func(done, total int), end func())
 // meter shows how far a job is: one bar with what is done, the rate and the time
 // left. It shows nothing unless w is a terminal.
 type meter struct {
-	w    io.Writer
-	task string
+	w, lines io.Writer
+	task     string
 
 	mu           sync.Mutex
 	p            *mpb.Progress
@@ -50,11 +50,12 @@ type meter struct {
 }
 
 func newMeter(w io.Writer, task string) *meter {
+	lines := w
 	f, ok := w.(*os.File)
 	if !ok || !terminal(f) {
 		w = nil
 	}
-	return &meter{w: w, task: task, began: time.Now()}
+	return &meter{w: w, lines: lines, task: task, began: time.Now()}
 }
 
 // Begin says how much there is.
@@ -113,6 +114,19 @@ func (m *meter) resume() {
 	m.mu.Lock()
 	defer m.mu.Unlock()
 	m.show()
+}
+
+// say prints a line above the bar.
+func (m *meter) say(line string) {
+	m.mu.Lock()
+	p := m.p
+	m.mu.Unlock()
+	if p != nil {
+		if _, err := fmt.Fprintln(p, oneLine(line)); err == nil {
+			return
+		}
+	}
+	fmt.Fprintln(m.lines, oneLine(line))
 }
 
 // end takes the bar away.

@@ -34,6 +34,7 @@ type replayOptions struct {
 	smooth, path  bool
 	also          []string
 	beliefAt      []string
+	over          overOptions
 }
 
 func replayCommand() *cobra.Command {
@@ -70,6 +71,7 @@ what is done; the same command goes on from there.`,
 	f.BoolVar(&o.path, "path", false, "look back for the most probable path, in path.csv and path.geojson")
 	f.StringSliceVar(&o.also, "also", nil, "write tracks in these forms, too: gpx, parquet")
 	f.StringArrayVar(&o.beliefAt, "belief-at", nil, "write the whole belief at this time, RFC 3339 or seconds after the first measurement, for a GIS; repeat")
+	o.over.flags(c)
 	settable(c, "max-cells")
 	return c
 }
@@ -97,6 +99,13 @@ func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
 	job.Meter = meter
 	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
 	defer stop()
+	if o.over.broker.URL != "" {
+		queue, err := o.handOver(ctx, job, meter)
+		if err != nil {
+			return err
+		}
+		defer queue.Close()
+	}
 	var failed []error
 	sum, err := job.Run(ctx, func(out *sweep.Outcome) error {
 		meter.end()
@@ -147,7 +156,7 @@ func (o *replayOptions) job(maps map[string]*mapFile, paths []string) (*sweep.Jo
 		HoldOut: o.holdOut, MaxCells: o.maxCells, Dir: o.dir, Parallel: o.parallel,
 		Again:         o.again || o.explain != "" || o.diagnose == diagnoseAlways,
 		EstimateTruth: o.estimateTruth, HoldOutFixes: o.holdOutFixes, Smooth: o.smooth, Path: o.path,
-		Version: versionText(), Program: programSHA256(), Command: append([]string{"leadline"}, os.Args[1:]...),
+		Version: versionText(), Program: programSHA256(), Command: append([]string{"leadline"}, withoutWhere(os.Args[1:])...),
 	}
 	if err := o.outputs(job); err != nil {
 		return nil, err

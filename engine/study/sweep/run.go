@@ -13,7 +13,6 @@ import (
 	"runtime"
 
 	"leadline/engine/drivefile"
-	"leadline/engine/filter"
 	"leadline/engine/geo"
 	"leadline/engine/sensor"
 	"leadline/engine/session"
@@ -95,6 +94,9 @@ func (w *work) do(ctx context.Context) error {
 	if w.out.Run, err = w.describe(sum); err != nil {
 		return err
 	}
+	if u.key != "" && w.out.Run.Key != u.key {
+		return ErrOther
+	}
 	if j.Dir != "" {
 		w.out.Dir = j.folder(u)
 		if !j.Again && w.resume() {
@@ -105,6 +107,9 @@ func (w *work) do(ctx context.Context) error {
 			return fmt.Errorf("--out: %w", err)
 		}
 		defer os.RemoveAll(w.dir)
+	}
+	if j.Elsewhere != nil {
+		return w.elsewhere(ctx)
 	}
 	res, stopped := w.replay(ctx)
 	var line *drivefile.Error
@@ -136,29 +141,39 @@ func reason(err error) string {
 }
 
 // look reads header and truth, and the file's hash.
-func (w *work) look() (string, error) {
-	f, err := os.Open(w.unit.drive.Path)
+func (w *work) look() (sum string, err error) {
+	if w.job.Elsewhere != nil {
+		w.header, sum, err = w.job.looked.at(w.unit.drive)
+		return sum, err
+	}
+	w.header, w.truth, sum, err = w.unit.drive.look()
+	return sum, err
+}
+
+func (d *Drive) look() (drivefile.Header, []score.Truth, string, error) {
+	f, err := d.open()
 	if err != nil {
-		return "", err
+		return drivefile.Header{}, nil, "", err
 	}
 	defer f.Close()
-	var sum string
-	w.header, w.truth, sum, err = replay.Look(f, w.unit.drive.Path)
-	return sum, err
+	return replay.Look(f, d.Path)
+}
+
+func (d *Drive) open() (*os.File, error) {
+	if d.File != "" {
+		return os.Open(d.File)
+	}
+	return os.Open(d.Path)
 }
 
 // describe says what a run is made of, and sums up what its results depend on.
 func (w *work) describe(driveSHA256 string) (results.Run, error) {
 	u, j := w.unit, w.job
-	dim := 2
-	if _, ok := u.drive.Map.Space.(filter.LineSpace); ok {
-		dim = 1
-	}
 	suite := u.suite
 	if suite == nil {
 		suite = &sensor.Suite{}
 	}
-	yaml, err := suite.YAML(dim)
+	yaml, err := u.yaml()
 	if err != nil {
 		return results.Run{}, err
 	}
@@ -166,7 +181,7 @@ func (w *work) describe(driveSHA256 string) (results.Run, error) {
 		Drive: u.drive.Name, DriveFile: u.drive.Path, DriveSHA256: driveSHA256, Vehicle: w.header.Vehicle,
 		Map: u.drive.Map.Path, MapFingerprint: u.drive.Map.Space.Fingerprint(), MapSource: u.drive.Map.Source, MapLicence: u.drive.Map.Licence,
 		Suite: u.drive.SuiteName, SuiteSHA256: hash(yaml), Setting: u.setting.Name, Set: []string{}, HeldOut: u.heldOut, Places: []results.Place{},
-		MaxCells: u.cells, AlertLimitM: suite.For(dim).Vehicle.AlertLimitM, TruthOffset: j.TruthOffset,
+		MaxCells: u.cells, AlertLimitM: suite.For(u.dim()).Vehicle.AlertLimitM, TruthOffset: j.TruthOffset,
 		Version: j.Version, Program: j.Program, Architecture: runtime.GOARCH, Command: j.Command,
 	}
 	for _, c := range u.setting.Changes {
@@ -229,7 +244,7 @@ func (w *work) replay(ctx context.Context) (*replay.Result, error) {
 	if err := w.begin(); err != nil {
 		return nil, err
 	}
-	f, err := os.Open(w.unit.drive.Path)
+	f, err := w.unit.drive.open()
 	if err != nil {
 		return nil, err
 	}
@@ -246,7 +261,7 @@ func (w *work) replay(ctx context.Context) (*replay.Result, error) {
 }
 
 func (w *work) whole(ctx context.Context) (*replay.Result, error) {
-	f, err := os.Open(w.unit.drive.Path)
+	f, err := w.unit.drive.open()
 	if err != nil {
 		return nil, err
 	}
@@ -334,16 +349,21 @@ func (w *work) finish(ctx context.Context, res *replay.Result) (err error) {
 				return err
 			}
 		}
-		if err := w.sinks.picture(w); err != nil {
+		if err := errors.Join(w.sinks.picture(w), w.settle()); err != nil {
 			return err
-		}
-		if err := os.RemoveAll(o.Dir); err != nil {
-			return fmt.Errorf("--out: %w", err)
-		}
-		if err := os.Rename(w.dir, o.Dir); err != nil {
-			return fmt.Errorf("--out: %w", err)
 		}
 	}
 	o.Score = s
+	return nil
+}
+
+// settle puts the folder that was written in the place of what was there.
+func (w *work) settle() error {
+	if err := os.RemoveAll(w.out.Dir); err != nil {
+		return fmt.Errorf("--out: %w", err)
+	}
+	if err := os.Rename(w.dir, w.out.Dir); err != nil {
+		return fmt.Errorf("--out: %w", err)
+	}
 	return nil
 }

@@ -34,10 +34,12 @@ type Map struct {
 // Drive is a drive file that is to be replayed.
 type Drive struct {
 	Path, Name string
-	Bytes      int64
-	Map        *Map
-	Suite      *sensor.Suite // nil is the default
-	SuiteName  string
+	// File is where it is read, if that is not Path, by which results name it.
+	File      string
+	Bytes     int64
+	Map       *Map
+	Suite     *sensor.Suite // nil is the default
+	SuiteName string
 }
 
 // Job is what is to be done.
@@ -74,6 +76,11 @@ type Job struct {
 	Command          []string
 	// Meter, if set, is told how far it is.
 	Meter Meter
+
+	// Elsewhere, if set, has runs done on other machines; Parallel is then how many
+	// are asked for at a time.
+	Elsewhere Elsewhere
+	looked    looked
 }
 
 // Meter is told how far a job is; several goroutines call it.
@@ -96,6 +103,8 @@ type unit struct {
 	suite   *sensor.Suite
 	cells   int
 	heldOut bool
+	// key is what the run must be made of, "" where nobody has said so before.
+	key string
 }
 
 // units are the job's runs, the settings applied, so that what is wrong with one
