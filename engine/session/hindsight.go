@@ -48,23 +48,17 @@ const (
 // cut to the first each stretch is computed again and run backward; then from the
 // first to the last, to be given away.
 func LookBack(c Config, events []sensor.Event, o HindsightOptions) error {
-	s, err := New(c)
+	l, err := newLooker(c, o)
 	if err != nil {
 		return err
 	}
 	if len(events) == 0 {
 		return errors.New("there is no event to look back over")
 	}
-	if gridded(s.state.belief.Moved()) {
-		return errors.New("a grid with velocity axes is not run backward: leave out the suite's velocity_grid to look back")
-	}
-	if o.TapeBytes == 0 {
-		o.TapeBytes = defaultTapeBytes
-	}
+	s := l.s
 	for _, ev := range events {
 		s.log.insert(len(s.log.events), ev, s.suite)
 	}
-	l := &looker{s: s, HindsightOptions: o}
 	s.begin()
 	_, err = l.stretch(l.first(), len(events), nil, true)
 	return err
@@ -103,6 +97,20 @@ type mark struct {
 type known struct {
 	smoothed, along *filter.Belief
 	spot            filter.Spot
+}
+
+func newLooker(c Config, o HindsightOptions) (*looker, error) {
+	s, err := New(c)
+	if err != nil {
+		return nil, err
+	}
+	if gridded(s.state.belief.Moved()) {
+		return nil, errors.New("a grid with velocity axes is not run backward: leave out the suite's velocity_grid to look back")
+	}
+	if o.TapeBytes == 0 {
+		o.TapeBytes = defaultTapeBytes
+	}
+	return &looker{s: s, HindsightOptions: o}, nil
 }
 
 func (l *looker) first() cut {
