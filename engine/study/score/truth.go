@@ -101,6 +101,11 @@ func (t *truths) motion(ns int64, sigmaM float64) motion {
 // anything on or over a map covers in that time, the arc and the line differ
 // by L²/8R, less than 8 cm. Of two truths at one time the first counts.
 func Interpolate(truth []Truth, timeNS int64) (Truth, bool) {
+	return Between(truth, timeNS, maxTruthGapNS)
+}
+
+// Between is Interpolate for neighbours that may be so far apart.
+func Between(truth []Truth, timeNS, gapNS int64) (Truth, bool) {
 	i, found := slices.BinarySearchFunc(truth, timeNS, func(t Truth, ns int64) int {
 		switch {
 		case t.TimeNS < ns:
@@ -113,7 +118,7 @@ func Interpolate(truth []Truth, timeNS int64) (Truth, bool) {
 	if found {
 		return truth[i], true
 	}
-	if i == 0 || i == len(truth) || truth[i].TimeNS-truth[i-1].TimeNS > maxTruthGapNS {
+	if i == 0 || i == len(truth) || truth[i].TimeNS-truth[i-1].TimeNS > gapNS {
 		return Truth{}, false
 	}
 	a, b := truth[i-1], truth[i]

@@ -1,7 +1,6 @@
 package tune
 
 import (
-	"math"
 	"reflect"
 	"runtime"
 	"strings"
@@ -14,43 +13,8 @@ import (
 	"leadline/fixtures/sim"
 )
 
-// hills is a field of smooth hills 40 m high and some 600 m wide.
-type hills struct{ frame geo.Frame }
-
-func (g hills) Frame() geo.Frame { return g.frame }
-func (g hills) Bounds() geo.Box {
-	return geo.Box{Min: geo.Point{E: -2e4, N: -2e4}, Max: geo.Point{E: 2e4, N: 2e4}}
-}
-
-func (g hills) Sample(dst geo.Heights, e, n []float64) {
-	const k = 2 * math.Pi / 600
-	for i := range e {
-		se, ce := math.Sincos(k * e[i])
-		sn, cn := math.Sincos(k * (n[i] + 0.3*e[i]))
-		dst.HeightM[i] = 20*se + 20*sn
-		if dst.SlopeE != nil {
-			dst.SlopeE[i], dst.SlopeN[i] = 20*k*ce+20*k*0.3*cn, 20*k*cn
-		}
-		if dst.VarianceM2 != nil {
-			dst.VarianceM2[i] = 0
-		}
-	}
-}
-
 // trueAltimeterM is that of the world.
 const trueAltimeterM = 3.0
-
-// wrong is a suite whose figures are off.
-const wrong = `
-sensors:
-  - name: odometry
-    kind: displacement
-    noise: {sigma_m_per_sqrt_m: 1.2} # a guess
-  - name: altimeter
-    kind: clearance
-    noise: {sigma_m: 1.5}
-    outlier_probability: 0
-`
 
 const (
 	altimeterKey = "sensors.altimeter.noise.sigma_m"
@@ -69,7 +33,7 @@ func parsed(t testing.TB, text string) *sensor.Suite {
 // flights are simulated: their world shares nothing with the filter.
 func flights(t testing.TB, seed uint64, n int, durationS float64) (out []Drive) {
 	t.Helper()
-	field := hills{geo.NewFrame(geo.FromDegrees(-30, 45))}
+	field := sim.Hills{On: geo.NewFrame(geo.FromDegrees(-30, 45))}
 	space := plane.Over(field, "hills", 50)
 	for i := range n {
 		o := sim.FlightOptions{Vehicle: "aircraft", DurationS: durationS, StartSigmaM: 20, OdometryMRootMin: 30, AltimeterM: trueAltimeterM}
@@ -93,7 +57,7 @@ func TestSaysWhatIsNotKnown(t *testing.T) {
 		Figures:  []Figure{{Key: "vehicle.max_accel_mps2"}, {Key: "sensors.altimeter.attitude_sigma_deg", Low: 0.01, High: 20}},
 		MaxCells: 200,
 	}
-	suite := parsed(t, strings.Replace(wrong, "sigma_m: 1.5", "sigma_m: 3", 1))
+	suite := parsed(t, strings.Replace(drives.Guessed, "sigma_m: 1.5", "sigma_m: 3", 1))
 	of := func(processors int) *Result {
 		defer runtime.GOMAXPROCS(runtime.GOMAXPROCS(processors))
 		r, err := Run(suite, all[:1], all[1:], o)
@@ -137,7 +101,7 @@ func TestTuneWrong(t *testing.T) {
 		{[]Figure{{Key: altimeterKey, Low: 2, High: 1}}, "the lower first"},
 		{[]Figure{{Key: "vehicle.integrity_risk", Low: 1e-3, High: 1}}, "a bound of vehicle.integrity_risk = 1"},
 	} {
-		_, err := Run(parsed(t, wrong), all, nil, Options{Figures: c.figures})
+		_, err := Run(parsed(t, drives.Guessed), all, nil, Options{Figures: c.figures})
 		if err == nil || !strings.Contains(err.Error(), c.want) || strings.Contains(err.Error(), "\n") {
 			t.Errorf("%v: got %v, want %q", c.figures, err, c.want)
 		}
