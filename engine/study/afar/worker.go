@@ -176,15 +176,21 @@ func (w *worker) join(ctx context.Context, j Job) error {
 		w.tell(j.ID, word{Refused: err.Error()})
 		return err
 	}
-	c, err := w.b.runs.Consumer(ctx, "asked-"+j.ID)
-	if err != nil { // it ends just now, or is announced again
+	if err := w.enter(ctx, j); err != nil { // it ends just now, or is announced again
 		w.o.Say("the job " + j.ID + " is passed over: " + err.Error())
-		return nil
+	}
+	return nil
+}
+
+// enter makes ready for a job's runs.
+func (w *worker) enter(ctx context.Context, j Job) error {
+	c, err := w.b.runs.Consumer(ctx, "asked-"+j.ID)
+	if err != nil {
+		return err
 	}
 	x := &joined{Job: j, asked: c, files: &files{b: w.b, open: w.o.OpenMap, maps: map[string]*openedMap{}, drives: map[string]*fetched{}}}
 	if x.files.dir, err = os.MkdirTemp(w.dir, "job-"); err != nil {
-		w.fail(err)
-		return nil
+		return err
 	}
 	x.ctx, x.end = context.WithCancel(ctx)
 	w.tell(j.ID, word{})
