@@ -46,7 +46,7 @@ var mayImport = map[string][]string{
 	"engine/server": {
 		"engine/session", "engine/traffic", "engine/sensor", "engine/summary", "engine/monitor",
 		"engine/filter", "engine/geo", "engine/journal", "engine/wire", "engine/server/web", "engine/server/identity", "engine/server/operate",
-		"engine/server/share", "engine/study/forecast", api,
+		"engine/server/share", "engine/study/forecast", "engine/study/results", "engine/study/score", "engine/study/track", api,
 	},
 	"engine/server/web":      {api},
 	"engine/server/identity": {},

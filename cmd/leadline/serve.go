@@ -27,6 +27,7 @@ type serveOptions struct {
 	maps, suites []string
 	origins      []string
 	uploads      string
+	results      string
 	listen       string
 	accessOptions
 	operateOptions
@@ -62,6 +63,7 @@ Without either a server that stops forgets its vehicles.`,
 	f.StringArrayVar(&o.maps, "map", nil, "compiled map as NAME=FILE, or FILE alone for its own name; repeat for several")
 	f.StringArrayVar(&o.suites, "suite", nil, "suite as NAME=FILE, or FILE alone; repeat for several; the starter suites are always there")
 	f.StringVar(&o.uploads, "uploads", "", "folder that keeps maps which clients send; none are taken without it")
+	f.StringVar(&o.results, "results", "", "folder of what replays wrote with --out, which analysts may read; none are told without it")
 	f.StringVar(&o.listen, "listen", defaultAddress, "address to listen on; port 0 takes a free one")
 	o.accessOptions.flags(c)
 	o.operateOptions.flags(c)
@@ -73,7 +75,7 @@ Without either a server that stops forgets its vehicles.`,
 	f.Var(&o.logLevel, "log-level", "least level of what is logged: debug, info, warn or error")
 	o.keep.flags(c)
 	f.BoolVar(&o.printConfig, "print-config", false, "print the settings that count and where each came from, and end")
-	settable(c, "map", "suite", "uploads", "listen", "origin", "max-vehicles", "drain-timeout", "log-format", "log-level")
+	settable(c, "map", "suite", "uploads", "results", "listen", "origin", "max-vehicles", "drain-timeout", "log-format", "log-level")
 	return c
 }
 
@@ -114,7 +116,7 @@ func (o *serveOptions) config() (cfg *server.Config, closeMaps func(), err error
 			m.Close()
 		}
 	}
-	cfg = &server.Config{Origins: o.origins, KeepFor: o.keep.keepFor, Page: page.Handler(), MaxCells: o.maxCells, Suites: map[string]*sensor.Suite{}, Limits: o.limits(o.vehicles)}
+	cfg = &server.Config{Origins: o.origins, Results: o.results, KeepFor: o.keep.keepFor, Page: page.Handler(), MaxCells: o.maxCells, Suites: map[string]*sensor.Suite{}, Limits: o.limits(o.vehicles)}
 	for _, arg := range o.maps {
 		name, path := named(arg, mapName)
 		m, err := openMap(path)

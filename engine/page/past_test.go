@@ -9,6 +9,8 @@ import (
 	"time"
 
 	"leadline/engine/geo"
+	"leadline/engine/monitor"
+	"leadline/engine/server"
 	"leadline/engine/study/score"
 	"leadline/engine/study/track"
 	"leadline/engine/summary"
@@ -33,7 +35,11 @@ func tableOf(t *testing.T, dir, name string, from geo.LonLat, worstS int) string
 			off = 40
 		}
 		at := geo.LonLat{Lon: from.Lon, Lat: from.Lat + float64(i)/6.37e6}
-		p := &summary.Posterior{TimeNS: time.Date(2026, 1, 1, 0, 0, i, 0, time.UTC).UnixNano(), Status: summary.Located, Mean: at, Radius50M: off, Radius95M: 2 * off, Radius99M: 3 * off}
+		var alarms []monitor.Alarm
+		if i >= worstS && i < worstS+20 {
+			alarms = []monitor.Alarm{{Kind: monitor.Bias, Key: monitor.Key{Sensor: "gyro"}}}
+		}
+		p := &summary.Posterior{Alarms: alarms, TimeNS: time.Date(2026, 1, 1, 0, 0, i, 0, time.UTC).UnixNano(), Status: summary.Located, Mean: at, Radius50M: off, Radius95M: 2 * off, Radius99M: 3 * off}
 		if err := w.Add(track.Step{Posterior: p, Known: true, ErrorM: off, Truth: score.Truth{At: at}}); err != nil {
 			t.Fatal(err)
 		}
@@ -52,8 +58,32 @@ func tableOf(t *testing.T, dir, name string, from geo.LonLat, worstS int) string
 // the server keeps it, and that what is no table is a sentence.
 func TestPastRuns(t *testing.T) {
 	b := startBrowser(t)
-	r := serve(t, "127.0.0.1:0")
-	w, _ := invented()
+	w, err := invented()
+	if err != nil {
+		t.Fatal(err)
+	}
+	folder := t.TempDir()
+	kept := filepath.Join(folder, "wheels=poor", "van")
+	if err := os.MkdirAll(kept, 0o755); err != nil {
+		t.Fatal(err)
+	}
+	tableOf(t, kept, "track.csv", w.van.Truths[0].Position, 60)
+	for file, text := range map[string]string{
+		"run.json":   fmt.Sprintf(`{"drive": "van", "setting": "wheels=poor", "alert_limit_m": 25, "map_fingerprint": %q}`, w.maps[0].Space.Fingerprint()),
+		"score.json": `{"drive": "van", "posteriors": 300, "p95_m": 40}`,
+	} {
+		if err := os.WriteFile(filepath.Join(kept, file), []byte(text), 0o600); err != nil {
+			t.Fatal(err)
+		}
+	}
+	hostile := filepath.Join(folder, "<img src=x onerror=alert(1)>")
+	if err := os.Mkdir(hostile, 0o755); err != nil {
+		t.Fatal(err)
+	}
+	if err := os.WriteFile(filepath.Join(hostile, "run.json"), []byte("{"), 0o600); err != nil {
+		t.Fatal(err)
+	}
+	r := serve(t, "127.0.0.1:0", func(c *server.Config) { c.Results = folder })
 	f := r.open(w.van, "van", nearStart(w.van))
 	r.send(f, upTo(w.van, 15))
 	closed, err := f.Close()
@@ -77,7 +107,8 @@ func TestPastRuns(t *testing.T) {
 		p.do("DOM.querySelector", map[string]any{"nodeId": doc.Root.NodeID, "selector": "[name=table]"}, &input)
 		p.do("DOM.setFileInputFiles", map[string]any{"nodeId": input.NodeID, "files": paths}, nil)
 	}
-	p.await("the drive", "document.querySelectorAll('[name=first] option').length === 2")
+	p.await("the drive", "document.querySelectorAll('[name=first] option').length === 3")
+	p.says(".note.bad", "onerror=alert(1)>/run.json: unexpected end of JSON input")
 	load(wrong)
 	p.says("#past-trouble", "wrong.csv is no track.csv: there is no column time")
 	load(calm, rough)
@@ -98,7 +129,7 @@ func TestPastRuns(t *testing.T) {
 
 	// By keyboard: the drive in place of the first, and through its time.
 	p.tabTo("document.querySelector('[name=first]')")
-	p.press("ArrowUp")
+	p.press("ArrowUp", "ArrowUp")
 	p.says("#past-figures", "van")
 	p.tabTo("document.getElementById('past-time')")
 	p.press("End")
@@ -110,6 +141,15 @@ func TestPastRuns(t *testing.T) {
 	p.tabTo("document.getElementById('past-time')")
 	p.press("End")
 	p.says("#past-now", closed.GetPosterior().GetTime().AsTime().Format("15:04:05"))
+
+	// A result of the server's folder beside it, by keyboard, and its alarm by mouse.
+	p.tabTo("document.querySelector('[name=second]')")
+	p.press("ArrowDown", "ArrowDown")
+	p.says("#past-figures", "wheels=poor/van")
+	p.says("section table:last-of-type", "bias gyro, until 00:01:20")
+	p.click("[...document.querySelectorAll('table button')].find(e => e.innerText === '00:01:00')")
+	p.says("#past-now", "00:01:00 UTC")
+	p.says("#past-figures", "80\u00a0m")
 	p.resize(390, 844)
 	p.do("Emulation.setEmulatedMedia", map[string]any{"features": []map[string]string{{"name": "prefers-color-scheme", "value": "dark"}}}, nil)
 	p.shoot("past-narrow-dark")

@@ -132,13 +132,17 @@ type running struct {
 }
 
 // serve starts a server on an address until the test ends.
-func serve(t *testing.T, address string) *running {
+func serve(t *testing.T, address string, change ...func(*server.Config)) *running {
 	t.Helper()
 	w, err := invented()
 	if err != nil {
 		t.Fatal(err)
 	}
-	s, err := server.New(server.Config{Maps: w.maps, Suites: w.suites, Page: page.Handler(), MaxCells: 20_000, Version: "test"})
+	cfg := server.Config{Maps: w.maps, Suites: w.suites, Page: page.Handler(), MaxCells: 20_000, Version: "test"}
+	for _, c := range change {
+		c(&cfg)
+	}
+	s, err := server.New(cfg)
 	if err != nil {
 		t.Fatal(err)
 	}

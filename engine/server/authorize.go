@@ -42,6 +42,8 @@ var rules = map[string]rule{
 	leadlinev1.PositionService_DescribeMap_FullMethodName:     {vehicle: all, dispatcher: all, analyst: all, administrator: all},
 	leadlinev1.PositionService_DrawMap_FullMethodName:         {vehicle: all, dispatcher: all, analyst: all, administrator: all},
 	leadlinev1.PositionService_Forecast_FullMethodName:        {dispatcher: all, analyst: all},
+	leadlinev1.PositionService_ListResults_FullMethodName:     {analyst: all},
+	leadlinev1.PositionService_ReadResult_FullMethodName:      {analyst: all},
 	leadlinev1.PositionService_ListSuites_FullMethodName:      {vehicle: all, dispatcher: all, analyst: all, administrator: all},
 	leadlinev1.PositionService_DescribeSuite_FullMethodName:   {vehicle: all, dispatcher: all, analyst: all, administrator: all},
 	leadlinev1.PositionService_UploadMap_FullMethodName:       {administrator: all},

@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"log/slog"
 	"net/http"
+	"os"
 	"time"
 
 	"google.golang.org/grpc/stats"
@@ -48,6 +49,8 @@ type Config struct {
 	Build string
 	// Uploads, if set, lets clients add maps.
 	Uploads *Uploads
+	// Results, if set, is a folder of results of replays that may be read.
+	Results string
 	// Access, if set, is who may do what; nil is that everybody may do all.
 	Access *Access
 	// Encryption, if set, encrypts every connection.
@@ -252,6 +255,9 @@ func (c *Config) Validate() error {
 	}
 	if c.KeepFor != 0 && c.KeepFor < time.Second {
 		errs = append(errs, fmt.Errorf("server: what was measured is to be kept for %v: give a second or more, or 0", c.KeepFor))
+	}
+	if info, err := os.Stat(c.Results); c.Results != "" && (err != nil || !info.IsDir()) {
+		errs = append(errs, fmt.Errorf("server: there is no folder %q of results: give one that `leadline replay --out` wrote", c.Results))
 	}
 	if c.Journal != nil {
 		errs = append(errs, c.Journal.Validate())

@@ -58,6 +58,8 @@ var reasonCodes = map[leadlinev1.Reason]codes.Code{
 	leadlinev1.Reason_REASON_JOURNAL_DOWN:       codes.Unavailable,
 	leadlinev1.Reason_REASON_JOURNAL_DAMAGED:    codes.DataLoss,
 	leadlinev1.Reason_REASON_RECOVERING:         codes.Unavailable,
+	leadlinev1.Reason_REASON_UNKNOWN_RESULT:     codes.NotFound,
+	leadlinev1.Reason_REASON_BAD_RESULT:         codes.DataLoss,
 }
 
 // retryAfter is after how long a call may do that was refused for what passes: a
@@ -71,7 +73,7 @@ var retryAfter = map[leadlinev1.Reason]time.Duration{
 	leadlinev1.Reason_REASON_RECOVERING:         200 * time.Millisecond,
 }
 
-// about says what a failure is about, for programs: vehicle, drive, map, suite,
+// about says what a failure is about, for programs: vehicle, drive, map, suite, result,
 // field (of the request), method, limit (its name) and most (its value).
 type about map[string]string
 

@@ -326,7 +326,7 @@ func TestFields(t *testing.T) {
 	const name, cells = "x", 1000 // x is every name in the requests; few cells cost little
 	lon, lat := 5.1, 53.1
 	suite := &sensor.Suite{Beacons: []sensor.Place{{ID: name, LonDeg: &lon, LatDeg: &lat}}, Posts: []sensor.Post{{ID: name, LonDeg: &lon, LatDeg: &lat}}}
-	_, conn := serve(t, Config{MaxCells: cells, Suites: map[string]*sensor.Suite{name: suite}, Limits: Limits{Vehicles: 5000}, Uploads: (&shelf{}).uploads(t.TempDir())})
+	_, conn := serve(t, Config{MaxCells: cells, Suites: map[string]*sensor.Suite{name: suite}, Limits: Limits{Vehicles: 5000}, Uploads: (&shelf{}).uploads(t.TempDir()), Results: resultsIn(t, "x")})
 	v, err := client.Open(limited(t), conn, client.Drive{Header: header("v"), Name: "x", Batch: 1}) // ended by EndDrive
 	if err != nil {
 		t.Fatal(err)

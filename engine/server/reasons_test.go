@@ -311,6 +311,14 @@ func wrongCalls(t *testing.T) []wrongCall {
 			_, err := put(limited(t), conn, beginning("sea", "plane a"), "plane a")
 			return saidBy(err)
 		}},
+		{leadlinev1.Reason_REASON_UNKNOWN_RESULT, "result", Config{Results: t.TempDir()}, func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
+			_, err := leadlinev1.NewPositionServiceClient(conn).ReadResult(limited(t), &leadlinev1.ReadResultRequest{Name: "given/van"})
+			return saidBy(err)
+		}},
+		{leadlinev1.Reason_REASON_BAD_RESULT, "result", Config{Results: resultsIn(t, "given/van", "score.json", "[")}, func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
+			_, err := leadlinev1.NewPositionServiceClient(conn).ReadResult(limited(t), &leadlinev1.ReadResultRequest{Name: "given/van"})
+			return saidBy(err)
+		}},
 		{leadlinev1.Reason_REASON_NO_IDENTITY, "", Config{Access: access}, mapsAs(limited)},
 		{leadlinev1.Reason_REASON_BAD_IDENTITY, "", Config{Access: access}, mapsAs(func(t *testing.T) context.Context { return showing(t, "token") })},
 		{leadlinev1.Reason_REASON_BAD_IDENTITY, "", Config{Access: access}, mapsAs(func(t *testing.T) context.Context {

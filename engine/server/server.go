@@ -43,6 +43,7 @@ type Server struct {
 	streams         atomic.Int64
 	drawing         chan struct{} // and one a map being drawn
 	forecasting     chan struct{} // and one a forecast being made
+	readingResults  chan struct{} // and one a result being read
 	hub             *hub
 	alarms          *alarmBook
 	atlas           *atlas
@@ -92,11 +93,13 @@ func New(cfg Config) (*Server, error) {
 		drawing:     make(chan struct{}, drawnAtOnce),
 		forecasting: make(chan struct{}, forecastsAtOnce),
 		draining:    make(chan struct{}),
-		owners:      map[string]*owner{},
-		kept:        map[string]*kept{},
-		pace:        newPace(cfg.Limits.RateInAll, cfg.Limits),
-		alarms:      newAlarmBook(cfg.Now),
-		atlas:       newAtlas(cfg.Maps),
+
+		readingResults: make(chan struct{}, resultsAtOnce),
+		owners:         map[string]*owner{},
+		kept:           map[string]*kept{},
+		pace:           newPace(cfg.Limits.RateInAll, cfg.Limits),
+		alarms:         newAlarmBook(cfg.Now),
+		atlas:          newAtlas(cfg.Maps),
 	}
 	s.load.limit, s.load.over = float64(cfg.Limits.Load), cfg.Limits.LoadOver
 	s.hub = newHub(cfg.Limits, cfg.Now, s.load.thins)

@@ -91,6 +91,16 @@ export class Client {
             input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/forecast_pb.js").ForecastRequest>;
             output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/forecast_pb.js").ForecastResponse>;
         };
+        listResults: {
+            methodKind: "unary";
+            input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/results_pb.js").ListResultsRequest>;
+            output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/results_pb.js").ListResultsResponse>;
+        };
+        readResult: {
+            methodKind: "unary";
+            input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/results_pb.js").ReadResultRequest>;
+            output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/results_pb.js").ReadResultResponse>;
+        };
         listSuites: {
             methodKind: "unary";
             input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("@bufbuild/protobuf").Message<"leadline.v1.ListSuitesRequest">>;

@@ -2,13 +2,15 @@
 import { effect, signal } from "@preact/signals";
 import { useEffect } from "preact/hooks";
 import { MapKind, type MapDescription } from "../../client/web/leadline/v1/map_pb.js";
+import type { ResultDescription } from "../../client/web/leadline/v1/results_pb.js";
+import { Code, ConnectError } from "@connectrpc/connect";
 import { calls, sentence, soon } from "./api";
 import { clockTimes, length, utcTime } from "./format";
 import { link, order } from "./live";
 import { drawCircle, drawMark, drawTrack } from "./paint";
 import { Plot } from "./plot";
 import type { LonLat } from "./project";
-import { momentAt, ofTable, ofVehicle, worst, type Moment, type Run } from "./runs";
+import { momentAt, ofResult, ofTable, ofVehicle, worst, type Moment, type Run } from "./runs";
 import { lookAt, stage } from "./stage";
 
 const maps = signal<MapDescription[]>([]);
@@ -16,6 +18,9 @@ const maps = signal<MapDescription[]>([]);
 const map = signal("");
 /** Files that have been read, by name. */
 const files = signal<Record<string, Run>>({});
+/** Results in the server's folder, and what is to be said of them. */
+const results = signal<ResultDescription[]>([]);
+const about = signal("");
 const first = signal<Run | undefined>(undefined);
 const second = signal<Run | undefined>(undefined);
 const at = signal(0);
@@ -28,15 +33,22 @@ function mapOf(r: Run): string {
   const p = r.moments[0].at;
   const inside = (m: MapDescription) => p.lon >= m.southWest!.lon! && p.lon <= m.northEast!.lon! && p.lat >= m.southWest!.lat! && p.lat <= m.northEast!.lat!;
   const fits = maps.value.filter(inside);
-  return map.value || r.map || (fits.find((m) => (m.kind === MapKind.ROADS) === r.roads) ?? fits[0])?.name || "";
+  return map.value || r.map || maps.value.find((m) => m.fingerprint === r.fingerprint)?.name || (fits.find((m) => (m.kind === MapKind.ROADS) === r.roads) ?? fits[0])?.name || "";
 }
+
+/** What was chosen last: an answer that comes later than the next choice is passed over. */
+const wished = new Map<typeof first, string>();
 
 async function choose(which: typeof first, name: string) {
   trouble.value = "";
+  wished.set(which, name);
   try {
-    which.value = name === "" ? undefined : name.startsWith("file ") ? files.value[name.slice(5)] : await ofVehicle(name.slice(8));
-    if (which.value && which === first) at.value = which.value.moments[0].ms;
+    const run = name === "" ? undefined : name.startsWith("file ") ? files.value[name.slice(5)] : name.startsWith("result ") ? await ofResult(name.slice(7)) : await ofVehicle(name.slice(8));
+    if (wished.get(which) !== name) return;
+    which.value = run;
+    if (run && which === first) at.value = run.moments[0].ms;
   } catch (e) {
+    if (wished.get(which) !== name) return;
     which.value = undefined;
     trouble.value = e instanceof Error && !("code" in e) ? e.message : sentence(e);
   }
@@ -60,6 +72,23 @@ async function load(list: FileList | null) {
   }
 }
 
+/** As many results as are listed. */
+const mostListed = 1000;
+
+/** Asks which results the server has. */
+async function list() {
+  try {
+    const page = await calls.listResults({ pageSize: mostListed }, { timeoutMs: 60_000 });
+    results.value = page.results;
+    about.value = page.nextPageToken ? `The first ${mostListed} results of the server's folder are listed.` : "";
+  } catch (e) {
+    results.value = [];
+    const { code } = ConnectError.from(e);
+    // A server without a folder, and a caller who is no analyst, have no list.
+    about.value = code === Code.Unimplemented ? "" : code === Code.PermissionDenied ? "Results of the server's folder are for analysts." : sentence(e);
+  }
+}
+
 /** Goes to a time, and shows where that was. */
 function go(ms: number) {
   at.value = ms;
@@ -77,6 +106,7 @@ function span(): [number, number] {
 
 export function PastRuns() {
   useEffect(() => {
+    void list();
     void calls.listMaps({}, soon).then((m) => (maps.value = m.maps)).catch((e) => (trouble.value = sentence(e)));
   }, [link.value.state]);
   useEffect(() => {
@@ -129,6 +159,10 @@ export function PastRuns() {
         </label>
         <p class="hint">A track.csv that leadline replay --out wrote, or two, of two settings; they may be dropped here. They stay in the browser.</p>
       </form>
+      {about.value && <p class="hint">{about.value}</p>}
+      {results.value.filter((r) => r.trouble).slice(0, 20).map((r) => (
+        <p key={r.name} class="note bad">{r.trouble}.</p>
+      ))}
       <p role="alert" class="bad" id="past-trouble">{trouble.value}</p>
       {all.length === 0 ? <p class="empty">Choose a drive that the server keeps, or load results.</p> : <Compared all={all} />}
     </>
@@ -137,7 +171,7 @@ export function PastRuns() {
 
 function Choice({ words, name, which }: { words: string; name: string; which: typeof first }) {
   const r = which.value;
-  const value = !r ? "" : files.value[r.name] === r ? "file " + r.name : "vehicle " + r.name;
+  const value = !r ? "" : files.value[r.name] === r ? "file " + r.name : (r.fingerprint === undefined ? "vehicle " : "result ") + r.name;
   return (
     <label>
       {words}{" "}
@@ -145,6 +179,11 @@ function Choice({ words, name, which }: { words: string; name: string; which: ty
         <option value="">none</option>
         {order.value.map((v) => (
           <option key={v} value={"vehicle " + v}>{v}, as the server keeps it</option>
+        ))}
+        {results.value.filter((q) => !q.trouble).map((q) => (
+          <option key={"result " + q.name} value={"result " + q.name}>
+            {q.name}{q.p95M === undefined ? "" : `, 95 % of errors within ${length(q.p95M)}`}{q.partial ? ", stopped early" : ""}
+          </option>
         ))}
         {Object.keys(files.value).map((f) => (
           <option key={f} value={"file " + f}>{f}</option>

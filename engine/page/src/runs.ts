@@ -2,7 +2,7 @@
 import { AlarmKind } from "../../client/web/leadline/v1/posterior_pb.js";
 import { Status } from "../../client/web/leadline/v1/posterior_pb.js";
 import { calls, soon } from "./api";
-import { figure, millis } from "./format";
+import { figure, millis, utcTime } from "./format";
 import { alarms, fleet } from "./live";
 import type { LonLat } from "./project";
 import { alarmWords, statusWords } from "./worry";
@@ -12,7 +12,7 @@ export type Moment = { ms: number; at: LonLat; located: boolean; status: string;
 
 export type Event = { ms: number; what: string };
 
-export type Run = { name: string; map: string; limitM: number; moments: Moment[]; events: Event[]; /** Whether it was on roads, where its file says so. */ roads?: boolean };
+export type Run = { name: string; map: string; limitM: number; moments: Moment[]; events: Event[]; /** Whether it was on roads, where its file says so. */ roads?: boolean; fingerprint?: string };
 
 /** As many moments as a run keeps: of each that go together the worst. */
 const mostMoments = 4000;
@@ -72,6 +72,23 @@ export async function ofVehicle(vehicle: string): Promise<Run> {
     .filter((a) => a.vehicle === vehicle && a.drive === trail.drive && a.alarm?.raised && a.alarm.kind !== AlarmKind.UNSPECIFIED)
     .map((a) => ({ ms: millis(a.alarm!.raised!), what: alarmWords(a.alarm) }));
   return { name: vehicle, map: p?.map ?? "", limitM: p?.alertLimitM ?? 0, moments, events };
+}
+
+/** A result of a replay in the server's folder. */
+export async function ofResult(name: string): Promise<Run> {
+  const { result, moments, alarms } = await calls.readResult({ name }, { timeoutMs: 120_000 });
+  const ms = (t?: { seconds: bigint; nanos: number }) => millis(t!);
+  return {
+    name, map: "", fingerprint: result!.mapFingerprint, limitM: result!.alertLimitM,
+    moments: moments.map((m) => ({
+      ms: ms(m.time), status: m.status,
+      at: m.position as LonLat,
+      located: m.status === "located",
+      radius95M: m.radius95M, protectionM: m.protectionM ?? NaN, errorM: m.errorM ?? NaN,
+      ...(m.truth && { truth: m.truth as LonLat }),
+    })),
+    events: alarms.map((a) => ({ ms: ms(a.raised), what: `${a.what}, ${a.cleared ? `until ${utcTime(a.cleared).slice(11)}` : "to the end"}` })),
+  };
 }
 
 /** The largest table that is read. */

@@ -38,6 +38,7 @@ type record struct {
 	TruthLon     *float64 `parquet:"truth_lon_deg,optional"`
 	TruthLat     *float64 `parquet:"truth_lat_deg,optional"`
 	Error        *float64 `parquet:"error_m,optional"`
+	Alarms       *string  `parquet:"alarms,optional,dict"`
 }
 
 // rowGroup is how many rows are held before they are written: some 15 MB.
@@ -80,6 +81,9 @@ func (t *Parquet) Add(p Step) error {
 	if len(p.Edges) > 0 {
 		e := &p.Edges[0]
 		r.Road, r.Edge, r.Probability = &e.Name, &e.Chart, &e.Probability
+	}
+	if words := alarmsOf(p.Posterior); words != "" {
+		r.Alarms = &words
 	}
 	t.row[0] = r
 	_, err := t.out.Write(t.row[:])

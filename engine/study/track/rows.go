@@ -7,7 +7,9 @@ import (
 	"io"
 	"iter"
 	"math"
+	"slices"
 	"strconv"
+	"strings"
 	"time"
 
 	"leadline/engine/geo"
@@ -22,6 +24,7 @@ type Row struct {
 	ErrorM      float64
 	Radius95M   float64
 	ProtectionM float64
+	Alarms      []string // that held, in words
 }
 
 // wanted are the columns that a row is made of.
@@ -42,6 +45,7 @@ func Rows(r io.Reader, name string) iter.Seq2[Row, error] {
 			fail(1, err)
 			return
 		}
+		alarms := slices.Index(head, "alarms") // tables of older programs have none
 		for i, w := range wanted {
 			at[i] = -1
 			for k, column := range head {
@@ -73,6 +77,9 @@ func Rows(r io.Reader, name string) iter.Seq2[Row, error] {
 			if err != nil {
 				fail(line, err)
 				return
+			}
+			if alarms >= 0 && fields[alarms] != "" {
+				row.Alarms = strings.Split(strings.Clone(fields[alarms]), "; ")
 			}
 			if !yield(row, nil) {
 				return

@@ -3,6 +3,7 @@ package track
 import (
 	"bytes"
 	"math"
+	"slices"
 	"strings"
 	"testing"
 
@@ -24,6 +25,9 @@ func TestRows(t *testing.T) {
 		}
 		if known := i < 4; known == math.IsNaN(row.ErrorM) || p.Protection.Bounded == math.IsNaN(row.ProtectionM) {
 			t.Errorf("row %d: %+v", i, row)
+		}
+		if want := map[int][]string{2: {"bias ears north, east"}, 3: {"lost", "bias ears north, east"}}[i]; !slices.Equal(row.Alarms, want) {
+			t.Errorf("row %d: alarms %q, want %q", i, row.Alarms, want)
 		}
 		i++
 	}

@@ -27,6 +27,7 @@ var columns = []string{
 	"log_evidence", // since the start, nats
 	"truth_lon_deg", "truth_lat_deg",
 	"error_m", // from the truth to the scored position
+	"alarms",  // that hold, with "; " between two
 }
 
 // Table writes track.csv: a header line, and a line for each posterior.
@@ -83,6 +84,7 @@ func (t *Table) Add(p Step) error {
 	number(true, p.GapS, p.LogEvidence)
 	degrees(p.Known, p.Truth.At)
 	number(p.Known, p.ErrorM)
+	text(alarmsOf(p.Posterior))
 	t.row = row
 	return t.out.Write(row)
 }

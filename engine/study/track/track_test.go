@@ -19,6 +19,7 @@ import (
 	"time"
 
 	"leadline/engine/geo"
+	"leadline/engine/monitor"
 	"leadline/engine/study/score"
 	"leadline/engine/summary"
 	"leadline/fixtures/outside"
@@ -91,6 +92,10 @@ func walk() *Track {
 		}
 		if i < 2 {
 			q.Status = summary.Ambiguous
+		}
+		if i == 2 || i == 3 {
+			q.LostAlarm = i == 3
+			q.Alarms = []monitor.Alarm{{Kind: monitor.Bias, Key: monitor.Key{Sensor: "ears", Part: "north; east"}}}
 		}
 		if i == 4 {
 			q.Protection = summary.Protection{Bounded: true, RadiusM: 50}

@@ -125,6 +125,10 @@ const (
 	// moment: one takes over what another one had, or cannot reach it. Call again,
 	// at any of them. UNAVAILABLE.
 	Reason_REASON_RECOVERING Reason = 53
+	// There is no result of that name. NOT_FOUND.
+	Reason_REASON_UNKNOWN_RESULT Reason = 60
+	// A result's files are damaged, or too large to be read here. DATA_LOSS.
+	Reason_REASON_BAD_RESULT Reason = 61
 )
 
 // Enum value maps for Reason.
@@ -170,6 +174,8 @@ var (
 		51: "REASON_JOURNAL_DOWN",
 		52: "REASON_JOURNAL_DAMAGED",
 		53: "REASON_RECOVERING",
+		60: "REASON_UNKNOWN_RESULT",
+		61: "REASON_BAD_RESULT",
 	}
 	Reason_value = map[string]int32{
 		"REASON_UNSPECIFIED":        0,
@@ -212,6 +218,8 @@ var (
 		"REASON_JOURNAL_DOWN":       51,
 		"REASON_JOURNAL_DAMAGED":    52,
 		"REASON_RECOVERING":         53,
+		"REASON_UNKNOWN_RESULT":     60,
+		"REASON_BAD_RESULT":         61,
 	}
 )
 
@@ -303,7 +311,7 @@ const file_leadline_v1_reason_proto_rawDesc = "" +
 	"\x18leadline/v1/reason.proto\x12\vleadline.v1\"P\n" +
 	"\aFailure\x12+\n" +
 	"\x06reason\x18\x01 \x01(\x0e2\x13.leadline.v1.ReasonR\x06reason\x12\x18\n" +
-	"\amessage\x18\x02 \x01(\tR\amessage*\xc0\a\n" +
+	"\amessage\x18\x02 \x01(\tR\amessage*\xf2\a\n" +
 	"\x06Reason\x12\x16\n" +
 	"\x12REASON_UNSPECIFIED\x10\x00\x12\x13\n" +
 	"\x0fREASON_UNUSABLE\x10\x01\x12\x16\n" +
@@ -344,7 +352,9 @@ const file_leadline_v1_reason_proto_rawDesc = "" +
 	"\x13REASON_JOURNAL_FULL\x102\x12\x17\n" +
 	"\x13REASON_JOURNAL_DOWN\x103\x12\x1a\n" +
 	"\x16REASON_JOURNAL_DAMAGED\x104\x12\x15\n" +
-	"\x11REASON_RECOVERING\x105B'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
+	"\x11REASON_RECOVERING\x105\x12\x19\n" +
+	"\x15REASON_UNKNOWN_RESULT\x10<\x12\x15\n" +
+	"\x11REASON_BAD_RESULT\x10=B'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
 
 var (
 	file_leadline_v1_reason_proto_rawDescOnce sync.Once

@@ -24,8 +24,7 @@ var File_leadline_v1_service_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_service_proto_rawDesc = "" +
 	"\n" +
-	"\x19leadline/v1/service.proto\x12\vleadline.v1\x1a\x17leadline/v1/alarm.proto\x1a\x16leadline/v1/draw.proto\x1a\x16leadline/v1/feed.proto\x1a\x17leadline/v1/fleet.proto\x1a\x18leadline/v1/follow.proto\x1a\x1aleadline/v1/forecast.proto\x1a\x15leadline/v1/map.proto\x1a\x17leadline/v1/trail.proto\x1a\x17leadline/v1/where.proto2\xa4\n" +
-	"\n" +
+	"\x19leadline/v1/service.proto\x12\vleadline.v1\x1a\x17leadline/v1/alarm.proto\x1a\x16leadline/v1/draw.proto\x1a\x16leadline/v1/feed.proto\x1a\x17leadline/v1/fleet.proto\x1a\x18leadline/v1/follow.proto\x1a\x1aleadline/v1/forecast.proto\x1a\x15leadline/v1/map.proto\x1a\x19leadline/v1/results.proto\x1a\x17leadline/v1/trail.proto\x1a\x17leadline/v1/where.proto2\xc5\v\n" +
 	"\x0fPositionService\x12?\n" +
 	"\x04Feed\x12\x18.leadline.v1.FeedRequest\x1a\x19.leadline.v1.FeedResponse(\x010\x01\x12>\n" +
 	"\x05Where\x12\x19.leadline.v1.WhereRequest\x1a\x1a.leadline.v1.WhereResponse\x12C\n" +
@@ -40,7 +39,10 @@ const file_leadline_v1_service_proto_rawDesc = "" +
 	"\bListMaps\x12\x1c.leadline.v1.ListMapsRequest\x1a\x1d.leadline.v1.ListMapsResponse\x12P\n" +
 	"\vDescribeMap\x12\x1f.leadline.v1.DescribeMapRequest\x1a .leadline.v1.DescribeMapResponse\x12D\n" +
 	"\aDrawMap\x12\x1b.leadline.v1.DrawMapRequest\x1a\x1c.leadline.v1.DrawMapResponse\x12I\n" +
-	"\bForecast\x12\x1c.leadline.v1.ForecastRequest\x1a\x1d.leadline.v1.ForecastResponse0\x01\x12M\n" +
+	"\bForecast\x12\x1c.leadline.v1.ForecastRequest\x1a\x1d.leadline.v1.ForecastResponse0\x01\x12P\n" +
+	"\vListResults\x12\x1f.leadline.v1.ListResultsRequest\x1a .leadline.v1.ListResultsResponse\x12M\n" +
+	"\n" +
+	"ReadResult\x12\x1e.leadline.v1.ReadResultRequest\x1a\x1f.leadline.v1.ReadResultResponse\x12M\n" +
 	"\n" +
 	"ListSuites\x12\x1e.leadline.v1.ListSuitesRequest\x1a\x1f.leadline.v1.ListSuitesResponse\x12V\n" +
 	"\rDescribeSuite\x12!.leadline.v1.DescribeSuiteRequest\x1a\".leadline.v1.DescribeSuiteResponse\x12L\n" +
@@ -61,26 +63,30 @@ var file_leadline_v1_service_proto_goTypes = []any{
 	(*DescribeMapRequest)(nil),      // 11: leadline.v1.DescribeMapRequest
 	(*DrawMapRequest)(nil),          // 12: leadline.v1.DrawMapRequest
 	(*ForecastRequest)(nil),         // 13: leadline.v1.ForecastRequest
-	(*ListSuitesRequest)(nil),       // 14: leadline.v1.ListSuitesRequest
-	(*DescribeSuiteRequest)(nil),    // 15: leadline.v1.DescribeSuiteRequest
-	(*UploadMapRequest)(nil),        // 16: leadline.v1.UploadMapRequest
-	(*FeedResponse)(nil),            // 17: leadline.v1.FeedResponse
-	(*WhereResponse)(nil),           // 18: leadline.v1.WhereResponse
-	(*FollowResponse)(nil),          // 19: leadline.v1.FollowResponse
-	(*TrailResponse)(nil),           // 20: leadline.v1.TrailResponse
-	(*AddSightingResponse)(nil),     // 21: leadline.v1.AddSightingResponse
-	(*SeeAlarmResponse)(nil),        // 22: leadline.v1.SeeAlarmResponse
-	(*ListVehiclesResponse)(nil),    // 23: leadline.v1.ListVehiclesResponse
-	(*EndDriveResponse)(nil),        // 24: leadline.v1.EndDriveResponse
-	(*EraseVehicleResponse)(nil),    // 25: leadline.v1.EraseVehicleResponse
-	(*DescribeJournalResponse)(nil), // 26: leadline.v1.DescribeJournalResponse
-	(*ListMapsResponse)(nil),        // 27: leadline.v1.ListMapsResponse
-	(*DescribeMapResponse)(nil),     // 28: leadline.v1.DescribeMapResponse
-	(*DrawMapResponse)(nil),         // 29: leadline.v1.DrawMapResponse
-	(*ForecastResponse)(nil),        // 30: leadline.v1.ForecastResponse
-	(*ListSuitesResponse)(nil),      // 31: leadline.v1.ListSuitesResponse
-	(*DescribeSuiteResponse)(nil),   // 32: leadline.v1.DescribeSuiteResponse
-	(*UploadMapResponse)(nil),       // 33: leadline.v1.UploadMapResponse
+	(*ListResultsRequest)(nil),      // 14: leadline.v1.ListResultsRequest
+	(*ReadResultRequest)(nil),       // 15: leadline.v1.ReadResultRequest
+	(*ListSuitesRequest)(nil),       // 16: leadline.v1.ListSuitesRequest
+	(*DescribeSuiteRequest)(nil),    // 17: leadline.v1.DescribeSuiteRequest
+	(*UploadMapRequest)(nil),        // 18: leadline.v1.UploadMapRequest
+	(*FeedResponse)(nil),            // 19: leadline.v1.FeedResponse
+	(*WhereResponse)(nil),           // 20: leadline.v1.WhereResponse
+	(*FollowResponse)(nil),          // 21: leadline.v1.FollowResponse
+	(*TrailResponse)(nil),           // 22: leadline.v1.TrailResponse
+	(*AddSightingResponse)(nil),     // 23: leadline.v1.AddSightingResponse
+	(*SeeAlarmResponse)(nil),        // 24: leadline.v1.SeeAlarmResponse
+	(*ListVehiclesResponse)(nil),    // 25: leadline.v1.ListVehiclesResponse
+	(*EndDriveResponse)(nil),        // 26: leadline.v1.EndDriveResponse
+	(*EraseVehicleResponse)(nil),    // 27: leadline.v1.EraseVehicleResponse
+	(*DescribeJournalResponse)(nil), // 28: leadline.v1.DescribeJournalResponse
+	(*ListMapsResponse)(nil),        // 29: leadline.v1.ListMapsResponse
+	(*DescribeMapResponse)(nil),     // 30: leadline.v1.DescribeMapResponse
+	(*DrawMapResponse)(nil),         // 31: leadline.v1.DrawMapResponse
+	(*ForecastResponse)(nil),        // 32: leadline.v1.ForecastResponse
+	(*ListResultsResponse)(nil),     // 33: leadline.v1.ListResultsResponse
+	(*ReadResultResponse)(nil),      // 34: leadline.v1.ReadResultResponse
+	(*ListSuitesResponse)(nil),      // 35: leadline.v1.ListSuitesResponse
+	(*DescribeSuiteResponse)(nil),   // 36: leadline.v1.DescribeSuiteResponse
+	(*UploadMapResponse)(nil),       // 37: leadline.v1.UploadMapResponse
 }
 var file_leadline_v1_service_proto_depIdxs = []int32{
 	0,  // 0: leadline.v1.PositionService.Feed:input_type -> leadline.v1.FeedRequest
@@ -97,28 +103,32 @@ var file_leadline_v1_service_proto_depIdxs = []int32{
 	11, // 11: leadline.v1.PositionService.DescribeMap:input_type -> leadline.v1.DescribeMapRequest
 	12, // 12: leadline.v1.PositionService.DrawMap:input_type -> leadline.v1.DrawMapRequest
 	13, // 13: leadline.v1.PositionService.Forecast:input_type -> leadline.v1.ForecastRequest
-	14, // 14: leadline.v1.PositionService.ListSuites:input_type -> leadline.v1.ListSuitesRequest
-	15, // 15: leadline.v1.PositionService.DescribeSuite:input_type -> leadline.v1.DescribeSuiteRequest
-	16, // 16: leadline.v1.PositionService.UploadMap:input_type -> leadline.v1.UploadMapRequest
-	17, // 17: leadline.v1.PositionService.Feed:output_type -> leadline.v1.FeedResponse
-	18, // 18: leadline.v1.PositionService.Where:output_type -> leadline.v1.WhereResponse
-	19, // 19: leadline.v1.PositionService.Follow:output_type -> leadline.v1.FollowResponse
-	20, // 20: leadline.v1.PositionService.Trail:output_type -> leadline.v1.TrailResponse
-	21, // 21: leadline.v1.PositionService.AddSighting:output_type -> leadline.v1.AddSightingResponse
-	22, // 22: leadline.v1.PositionService.SeeAlarm:output_type -> leadline.v1.SeeAlarmResponse
-	23, // 23: leadline.v1.PositionService.ListVehicles:output_type -> leadline.v1.ListVehiclesResponse
-	24, // 24: leadline.v1.PositionService.EndDrive:output_type -> leadline.v1.EndDriveResponse
-	25, // 25: leadline.v1.PositionService.EraseVehicle:output_type -> leadline.v1.EraseVehicleResponse
-	26, // 26: leadline.v1.PositionService.DescribeJournal:output_type -> leadline.v1.DescribeJournalResponse
-	27, // 27: leadline.v1.PositionService.ListMaps:output_type -> leadline.v1.ListMapsResponse
-	28, // 28: leadline.v1.PositionService.DescribeMap:output_type -> leadline.v1.DescribeMapResponse
-	29, // 29: leadline.v1.PositionService.DrawMap:output_type -> leadline.v1.DrawMapResponse
-	30, // 30: leadline.v1.PositionService.Forecast:output_type -> leadline.v1.ForecastResponse
-	31, // 31: leadline.v1.PositionService.ListSuites:output_type -> leadline.v1.ListSuitesResponse
-	32, // 32: leadline.v1.PositionService.DescribeSuite:output_type -> leadline.v1.DescribeSuiteResponse
-	33, // 33: leadline.v1.PositionService.UploadMap:output_type -> leadline.v1.UploadMapResponse
-	17, // [17:34] is the sub-list for method output_type
-	0,  // [0:17] is the sub-list for method input_type
+	14, // 14: leadline.v1.PositionService.ListResults:input_type -> leadline.v1.ListResultsRequest
+	15, // 15: leadline.v1.PositionService.ReadResult:input_type -> leadline.v1.ReadResultRequest
+	16, // 16: leadline.v1.PositionService.ListSuites:input_type -> leadline.v1.ListSuitesRequest
+	17, // 17: leadline.v1.PositionService.DescribeSuite:input_type -> leadline.v1.DescribeSuiteRequest
+	18, // 18: leadline.v1.PositionService.UploadMap:input_type -> leadline.v1.UploadMapRequest
+	19, // 19: leadline.v1.PositionService.Feed:output_type -> leadline.v1.FeedResponse
+	20, // 20: leadline.v1.PositionService.Where:output_type -> leadline.v1.WhereResponse
+	21, // 21: leadline.v1.PositionService.Follow:output_type -> leadline.v1.FollowResponse
+	22, // 22: leadline.v1.PositionService.Trail:output_type -> leadline.v1.TrailResponse
+	23, // 23: leadline.v1.PositionService.AddSighting:output_type -> leadline.v1.AddSightingResponse
+	24, // 24: leadline.v1.PositionService.SeeAlarm:output_type -> leadline.v1.SeeAlarmResponse
+	25, // 25: leadline.v1.PositionService.ListVehicles:output_type -> leadline.v1.ListVehiclesResponse
+	26, // 26: leadline.v1.PositionService.EndDrive:output_type -> leadline.v1.EndDriveResponse
+	27, // 27: leadline.v1.PositionService.EraseVehicle:output_type -> leadline.v1.EraseVehicleResponse
+	28, // 28: leadline.v1.PositionService.DescribeJournal:output_type -> leadline.v1.DescribeJournalResponse
+	29, // 29: leadline.v1.PositionService.ListMaps:output_type -> leadline.v1.ListMapsResponse
+	30, // 30: leadline.v1.PositionService.DescribeMap:output_type -> leadline.v1.DescribeMapResponse
+	31, // 31: leadline.v1.PositionService.DrawMap:output_type -> leadline.v1.DrawMapResponse
+	32, // 32: leadline.v1.PositionService.Forecast:output_type -> leadline.v1.ForecastResponse
+	33, // 33: leadline.v1.PositionService.ListResults:output_type -> leadline.v1.ListResultsResponse
+	34, // 34: leadline.v1.PositionService.ReadResult:output_type -> leadline.v1.ReadResultResponse
+	35, // 35: leadline.v1.PositionService.ListSuites:output_type -> leadline.v1.ListSuitesResponse
+	36, // 36: leadline.v1.PositionService.DescribeSuite:output_type -> leadline.v1.DescribeSuiteResponse
+	37, // 37: leadline.v1.PositionService.UploadMap:output_type -> leadline.v1.UploadMapResponse
+	19, // [19:38] is the sub-list for method output_type
+	0,  // [0:19] is the sub-list for method input_type
 	0,  // [0:0] is the sub-list for extension type_name
 	0,  // [0:0] is the sub-list for extension extendee
 	0,  // [0:0] is the sub-list for field type_name
@@ -136,6 +146,7 @@ func file_leadline_v1_service_proto_init() {
 	file_leadline_v1_follow_proto_init()
 	file_leadline_v1_forecast_proto_init()
 	file_leadline_v1_map_proto_init()
+	file_leadline_v1_results_proto_init()
 	file_leadline_v1_trail_proto_init()
 	file_leadline_v1_where_proto_init()
 	type x struct{}

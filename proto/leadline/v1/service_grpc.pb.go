@@ -33,6 +33,8 @@ const (
 	PositionService_DescribeMap_FullMethodName     = "/leadline.v1.PositionService/DescribeMap"
 	PositionService_DrawMap_FullMethodName         = "/leadline.v1.PositionService/DrawMap"
 	PositionService_Forecast_FullMethodName        = "/leadline.v1.PositionService/Forecast"
+	PositionService_ListResults_FullMethodName     = "/leadline.v1.PositionService/ListResults"
+	PositionService_ReadResult_FullMethodName      = "/leadline.v1.PositionService/ReadResult"
 	PositionService_ListSuites_FullMethodName      = "/leadline.v1.PositionService/ListSuites"
 	PositionService_DescribeSuite_FullMethodName   = "/leadline.v1.PositionService/DescribeSuite"
 	PositionService_UploadMap_FullMethodName       = "/leadline.v1.PositionService/UploadMap"
@@ -83,6 +85,11 @@ type PositionServiceClient interface {
 	DrawMap(ctx context.Context, in *DrawMapRequest, opts ...grpc.CallOption) (*DrawMapResponse, error)
 	// Forecast says beforehand how good positions will be along a planned route.
 	Forecast(ctx context.Context, in *ForecastRequest, opts ...grpc.CallOption) (grpc.ServerStreamingClient[ForecastResponse], error)
+	// ListResults says which results of replays there are, where the server was given
+	// a folder of them.
+	ListResults(ctx context.Context, in *ListResultsRequest, opts ...grpc.CallOption) (*ListResultsResponse, error)
+	// ReadResult says what one of them said over time.
+	ReadResult(ctx context.Context, in *ReadResultRequest, opts ...grpc.CallOption) (*ReadResultResponse, error)
 	// ListSuites says which suites drives may use.
 	ListSuites(ctx context.Context, in *ListSuitesRequest, opts ...grpc.CallOption) (*ListSuitesResponse, error)
 	// DescribeSuite says what one of them is.
@@ -260,6 +267,26 @@ func (c *positionServiceClient) Forecast(ctx context.Context, in *ForecastReques
 // This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
 type PositionService_ForecastClient = grpc.ServerStreamingClient[ForecastResponse]
 
+func (c *positionServiceClient) ListResults(ctx context.Context, in *ListResultsRequest, opts ...grpc.CallOption) (*ListResultsResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(ListResultsResponse)
+	err := c.cc.Invoke(ctx, PositionService_ListResults_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *positionServiceClient) ReadResult(ctx context.Context, in *ReadResultRequest, opts ...grpc.CallOption) (*ReadResultResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(ReadResultResponse)
+	err := c.cc.Invoke(ctx, PositionService_ReadResult_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
 func (c *positionServiceClient) ListSuites(ctx context.Context, in *ListSuitesRequest, opts ...grpc.CallOption) (*ListSuitesResponse, error) {
 	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
 	out := new(ListSuitesResponse)
@@ -338,6 +365,11 @@ type PositionServiceServer interface {
 	DrawMap(context.Context, *DrawMapRequest) (*DrawMapResponse, error)
 	// Forecast says beforehand how good positions will be along a planned route.
 	Forecast(*ForecastRequest, grpc.ServerStreamingServer[ForecastResponse]) error
+	// ListResults says which results of replays there are, where the server was given
+	// a folder of them.
+	ListResults(context.Context, *ListResultsRequest) (*ListResultsResponse, error)
+	// ReadResult says what one of them said over time.
+	ReadResult(context.Context, *ReadResultRequest) (*ReadResultResponse, error)
 	// ListSuites says which suites drives may use.
 	ListSuites(context.Context, *ListSuitesRequest) (*ListSuitesResponse, error)
 	// DescribeSuite says what one of them is.
@@ -395,6 +427,12 @@ func (UnimplementedPositionServiceServer) DrawMap(context.Context, *DrawMapReque
 }
 func (UnimplementedPositionServiceServer) Forecast(*ForecastRequest, grpc.ServerStreamingServer[ForecastResponse]) error {
 	return status.Error(codes.Unimplemented, "method Forecast not implemented")
+}
+func (UnimplementedPositionServiceServer) ListResults(context.Context, *ListResultsRequest) (*ListResultsResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method ListResults not implemented")
+}
+func (UnimplementedPositionServiceServer) ReadResult(context.Context, *ReadResultRequest) (*ReadResultResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method ReadResult not implemented")
 }
 func (UnimplementedPositionServiceServer) ListSuites(context.Context, *ListSuitesRequest) (*ListSuitesResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method ListSuites not implemented")
@@ -653,6 +691,42 @@ func _PositionService_Forecast_Handler(srv interface{}, stream grpc.ServerStream
 // This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
 type PositionService_ForecastServer = grpc.ServerStreamingServer[ForecastResponse]
 
+func _PositionService_ListResults_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(ListResultsRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).ListResults(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_ListResults_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).ListResults(ctx, req.(*ListResultsRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _PositionService_ReadResult_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(ReadResultRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).ReadResult(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_ReadResult_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).ReadResult(ctx, req.(*ReadResultRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
 func _PositionService_ListSuites_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
 	in := new(ListSuitesRequest)
 	if err := dec(in); err != nil {
@@ -746,6 +820,14 @@ var PositionService_ServiceDesc = grpc.ServiceDesc{
 		{
 			MethodName: "DrawMap",
 			Handler:    _PositionService_DrawMap_Handler,
+		},
+		{
+			MethodName: "ListResults",
+			Handler:    _PositionService_ListResults_Handler,
+		},
+		{
+			MethodName: "ReadResult",
+			Handler:    _PositionService_ReadResult_Handler,
 		},
 		{
 			MethodName: "ListSuites",

@@ -339,6 +339,20 @@ export enum Reason {
    * @generated from enum value: REASON_RECOVERING = 53;
    */
   RECOVERING = 53,
+
+  /**
+   * There is no result of that name. NOT_FOUND.
+   *
+   * @generated from enum value: REASON_UNKNOWN_RESULT = 60;
+   */
+  UNKNOWN_RESULT = 60,
+
+  /**
+   * A result's files are damaged, or too large to be read here. DATA_LOSS.
+   *
+   * @generated from enum value: REASON_BAD_RESULT = 61;
+   */
+  BAD_RESULT = 61,
 }
 
 /**

@@ -12,6 +12,7 @@ import type { DescribeJournalRequestSchema, DescribeJournalResponseSchema, EndDr
 import type { DescribeMapRequestSchema, DescribeMapResponseSchema, DescribeSuiteRequestSchema, DescribeSuiteResponseSchema, ListMapsRequestSchema, ListMapsResponseSchema, ListSuitesRequestSchema, ListSuitesResponseSchema, UploadMapRequestSchema, UploadMapResponseSchema } from "./map_pb.js";
 import type { DrawMapRequestSchema, DrawMapResponseSchema } from "./draw_pb.js";
 import type { ForecastRequestSchema, ForecastResponseSchema } from "./forecast_pb.js";
+import type { ListResultsRequestSchema, ListResultsResponseSchema, ReadResultRequestSchema, ReadResultResponseSchema } from "./results_pb.js";
 
 /**
  * Describes the file leadline/v1/service.proto.
@@ -174,6 +175,27 @@ export declare const PositionService: GenService<{
     methodKind: "server_streaming";
     input: typeof ForecastRequestSchema;
     output: typeof ForecastResponseSchema;
+  },
+  /**
+   * ListResults says which results of replays there are, where the server was given
+   * a folder of them.
+   *
+   * @generated from rpc leadline.v1.PositionService.ListResults
+   */
+  listResults: {
+    methodKind: "unary";
+    input: typeof ListResultsRequestSchema;
+    output: typeof ListResultsResponseSchema;
+  },
+  /**
+   * ReadResult says what one of them said over time.
+   *
+   * @generated from rpc leadline.v1.PositionService.ReadResult
+   */
+  readResult: {
+    methodKind: "unary";
+    input: typeof ReadResultRequestSchema;
+    output: typeof ReadResultResponseSchema;
   },
   /**
    * ListSuites says which suites drives may use.
