@@ -45,8 +45,10 @@ func (a *archive) names(ctx context.Context) (names []string, err error) {
 			return ctx.Err()
 		case err != nil && at == ".":
 			return err
-		case err != nil || !d.IsDir():
-			return nil // a folder that cannot be read holds no results
+		case err != nil:
+			return fs.SkipDir // a folder that cannot be read holds no results
+		case !d.IsDir():
+			return nil
 		case at != "." && strings.HasPrefix(d.Name(), "."):
 			return fs.SkipDir // a run that is being written
 		}
