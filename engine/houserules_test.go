@@ -39,7 +39,7 @@ var mayImport = map[string][]string{
 	"engine/monitor":           {"engine/exact"},
 	"engine/summary":           {"engine/exact", "engine/filter", "engine/monitor", "engine/geo"},
 	"engine/session":           {"engine/exact", "engine/filter", "engine/monitor", "engine/sensor", "engine/summary", "engine/geo"},
-	"engine/traffic":           {"engine/sensor", "engine/geo"},
+	"engine/traffic":           {"engine/exact", "engine/sensor", "engine/geo"},
 	"engine/wire":              {api, "engine/sensor", "engine/geo"},
 	"engine/drivefile":         {api, "engine/wire", "engine/sensor", "engine/geo"},
 	"engine/journal":           {},

@@ -121,6 +121,9 @@ func (o *feedOptions) conclude(c *cobra.Command, path, name string, closed *lead
 		if err := printMessage(c.OutOrStdout(), closed); err != nil {
 			return err
 		}
+	} else if t := closed.GetTraffic(); t != nil {
+		fmt.Fprintf(c.OutOrStdout(), "%s: %d measurements, %d refused\n", name, closed.GetAccepted()+closed.GetRefused(), closed.GetRefused())
+		printTraffic(c.OutOrStdout(), t)
 	} else {
 		fmt.Fprintf(c.OutOrStdout(), "%s: %d posteriors from %d measurements, %d refused\nsha256 %s\n",
 			name, closed.GetPosteriors(), closed.GetAccepted()+closed.GetRefused(), closed.GetRefused(), closed.GetPosteriorSha256())

@@ -122,6 +122,10 @@ vehicle can still be asked for.`,
 
 // printClosed prints how a drive has ended.
 func printClosed(w io.Writer, name string, c *leadlinev1.Closed) {
+	if t := c.GetTraffic(); t != nil {
+		printTraffic(w, t)
+		return
+	}
 	fmt.Fprintf(w, "%s: %d posteriors from %d measurements, %d refused\nsha256 %s\n",
 		oneLine(name), c.GetPosteriors(), c.GetAccepted()+c.GetRefused(), c.GetRefused(), c.GetPosteriorSha256())
 	printPosterior(w, c.GetPosterior())

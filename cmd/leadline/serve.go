@@ -83,7 +83,7 @@ func serve(c *cobra.Command, o *serveOptions) error {
 	if o.printConfig {
 		return printConfig(c.OutOrStdout(), c)
 	}
-	if len(o.maps) == 0 && o.uploads == "" && o.keep.shareAt == "" {
+	if len(o.maps) == 0 && len(o.suites) == 0 && o.uploads == "" && o.keep.shareAt == "" {
 		return errors.New("no map to serve: give --map NAME=FILE, LEADLINE_MAP, or map in the file of settings; see `leadline serve --help`")
 	}
 	if err := errors.Join(o.checkBounds(o.vehicles), o.check()); err != nil {

@@ -15,6 +15,8 @@ import (
 )
 
 type trafficOptions struct {
+	reach
+	follow bool
 	suite  string
 	everyS float64
 	least  float64
@@ -25,16 +27,26 @@ type trafficOptions struct {
 func trafficCommand() *cobra.Command {
 	var o trafficOptions
 	c := &cobra.Command{
-		Use:   "traffic DRIVE --suite SUITE",
-		Short: "Follow unnamed vehicles past listening posts in a recorded file of bearings",
+		Use:   "traffic DRIVE|ROAD --suite SUITE|--at ADDR",
+		Short: "Follow unnamed vehicles past listening posts, in a recorded file of bearings or at a server",
 		Long: `Traffic reads a file of acoustic bearings and follows the vehicles that the posts
 hear, of which nothing else is known: how many there are, where each is, how fast
 and which way, and how many pass the lines of the suite. The suite describes the
-road, the posts and what is to be expected.`,
+road, the posts and what is to be expected.
+
+With --at it asks a server for a road by its name; its bearings are fed there.`,
 		Args: cobra.ExactArgs(1),
-		RunE: func(c *cobra.Command, args []string) error { return followTraffic(c, &o, args[0]) },
+		RunE: func(c *cobra.Command, args []string) error {
+			if o.address != "" {
+				return askTraffic(c, &o, args[0])
+			}
+			return followTraffic(c, &o, args[0])
+		},
 	}
 	f := c.Flags()
+	o.addressFlag(c, "at", "", "ask the server at this address for a road's traffic, in place of reading a file")
+	settable(c, "tls", "ca", "cert", "key", "token-file")
+	f.BoolVar(&o.follow, "follow", false, "with --at: print each picture as it comes, --every seconds or more apart")
 	f.StringVar(&o.suite, "suite", "", "suite file or starter that describes road and posts (default: the one that the header names)")
 	f.Float64Var(&o.everyS, "every", 10, "seconds between two pictures; 0 prints the last one alone")
 	f.Float64Var(&o.least, "least", 0.5, "least probability with which a vehicle that is printed exists")
@@ -43,7 +55,7 @@ road, the posts and what is to be expected.`,
 	return c
 }
 
-func followTraffic(c *cobra.Command, o *trafficOptions, path string) error {
+func (o *trafficOptions) check() error {
 	switch {
 	case !(o.everyS == 0 || o.everyS >= 0.01 && o.everyS <= 1e6):
 		return fmt.Errorf("--every is %v: give 0, or seconds from 0.01 to 1e6", o.everyS)
@@ -51,6 +63,16 @@ func followTraffic(c *cobra.Command, o *trafficOptions, path string) error {
 		return fmt.Errorf("--least is %v: give a probability, 0 to 1", o.least)
 	case o.parts < 0 || o.parts > 1000:
 		return fmt.Errorf("--parts is %d: give 0 to 1000", o.parts)
+	}
+	return nil
+}
+
+func followTraffic(c *cobra.Command, o *trafficOptions, path string) error {
+	if err := o.check(); err != nil {
+		return err
+	}
+	if o.follow {
+		return errors.New("--follow goes with --at: a file is read to its end")
 	}
 	file, b, err := openDrive(path)
 	if err != nil {
@@ -72,9 +94,6 @@ func followTraffic(c *cobra.Command, o *trafficOptions, path string) error {
 	w, err := traffic.Open(suite)
 	if err != nil {
 		return fmt.Errorf("suite: %w", err)
-	}
-	for _, n := range w.Filter().Notes() {
-		fmt.Fprintln(c.ErrOrStderr(), "note: "+oneLine(n))
 	}
 	p := trafficPrinter{options: o, suite: suite, watch: w, out: c.OutOrStdout()}
 	refused, first := 0, error(nil)
@@ -105,11 +124,15 @@ func followTraffic(c *cobra.Command, o *trafficOptions, path string) error {
 	if err := p.last(); err != nil {
 		return err
 	}
-	if a := w.Filter().Account(); a.Refused > 0 {
-		fmt.Fprintf(c.ErrOrStderr(), "note: %d times there were more vehicles than are followed at once; the others were\n", a.Refused)
+	if !o.asJSON {
+		fmt.Fprintln(c.OutOrStdout(), "sha256 of all that is known", w.Hash())
 	}
-	for _, id := range w.Quiet() {
-		fmt.Fprintf(c.ErrOrStderr(), "note: post %q has been silent for so long that it was taken for out of order\n", id)
+	for _, d := range w.Doubts() {
+		fmt.Fprintln(c.ErrOrStderr(), "note: "+oneLine(d.Words))
+	}
+	if n := w.Dropped(); n > 0 && first == nil {
+		first = fmt.Errorf("%s: of a post whose clock is more than a minute ahead of all others", path)
+		refused += n
 	}
 	if first != nil {
 		return fmt.Errorf("%d measurements could not be used; the first: %w", refused, first)

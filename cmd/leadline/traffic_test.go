@@ -36,7 +36,7 @@ func TestTraffic(t *testing.T) {
 	}
 	var out, errs bytes.Buffer
 	status := run([]string{"traffic", drive, "--every", "30", "--parts", "6"}, &out, &errs)
-	if says := errs.String(); status != exitBad || !strings.Contains(says, `1 measurements could not be used`) || !strings.Contains(says, `post "elsewhere"`) || strings.Count(says, "\n") != 1 {
+	if says := errs.String(); status != exitBad || !strings.Contains(says, `1 measurements could not be used`) || !strings.Contains(says, `post "elsewhere"`) || strings.Count(says, "\n") != 2 {
 		t.Errorf("seed %d: status %d: %s", seed, status, says)
 	}
 	if says := out.String(); !strings.Contains(says, "line middle at 300 m: ") || strings.Count(says, " expected\n") != 6 || !strings.Contains(says, "part 6: ") {

@@ -41,6 +41,9 @@ type Traffic struct {
 	// VanishPerS is how often, a second, a vehicle goes otherwise than over the
 	// road's ends: into a yard, or falls silent. 1e-4.
 	VanishPerS float64 `yaml:"vanish_per_s"`
+	// MaxVehicles is the greatest number of vehicles, or what may be one, that are
+	// followed at once: 256.
+	MaxVehicles int `yaml:"max_vehicles"`
 }
 
 // Corner is a point of a road.
@@ -75,6 +78,9 @@ func (t Traffic) Filled() Traffic {
 	or(&t.SpeedSigmaMPS, 4)
 	or(&t.WalkMPS, 0.7)
 	or(&t.VanishPerS, 1e-4)
+	if t.MaxVehicles == 0 {
+		t.MaxVehicles = 256
+	}
 	return t
 }
 
@@ -119,4 +125,5 @@ func (f *findings) traffic(t Traffic) {
 	f.unless0("traffic.speed_sigma_mps", t.SpeedSigmaMPS, 0.5, 30)
 	f.unless0("traffic.walk_mps_per_sqrt_s", t.WalkMPS, 0.01, 10)
 	f.unless0("traffic.vanish_per_s", t.VanishPerS, 1e-9, 0.1)
+	f.within("traffic.max_vehicles", float64(t.MaxVehicles), 0, 10_000)
 }

@@ -31,6 +31,8 @@ var rules = map[string]rule{
 	leadlinev1.PositionService_Feed_FullMethodName:            {vehicle: own, vehicles: fedVehicle},
 	leadlinev1.PositionService_Where_FullMethodName:           {vehicle: own, dispatcher: all, analyst: all, vehicles: namedVehicles},
 	leadlinev1.PositionService_Follow_FullMethodName:          {vehicle: own, dispatcher: all, analyst: all, vehicles: followedVehicles},
+	leadlinev1.PositionService_Traffic_FullMethodName:         {vehicle: own, dispatcher: all, analyst: all, vehicles: namedRoad},
+	leadlinev1.PositionService_FollowTraffic_FullMethodName:   {vehicle: own, dispatcher: all, analyst: all, vehicles: namedRoad},
 	leadlinev1.PositionService_Trail_FullMethodName:           {vehicle: own, dispatcher: all, analyst: all, vehicles: namedVehicle},
 	leadlinev1.PositionService_AddSighting_FullMethodName:     {vehicle: own, dispatcher: all, vehicles: namedVehicle},
 	leadlinev1.PositionService_SeeAlarm_FullMethodName:        {dispatcher: all},
@@ -61,6 +63,17 @@ func fedVehicle(m any) ([]string, bool) {
 func namedVehicle(m any) ([]string, bool) {
 	if r, ok := m.(interface{ GetVehicle() string }); ok {
 		return []string{r.GetVehicle()}, false
+	}
+	return nil, true
+}
+
+// namedRoad is the road that is asked for: who feeds it is known by its name.
+func namedRoad(m any) ([]string, bool) {
+	if r, ok := m.(*leadlinev1.FollowTrafficRequest); ok {
+		m = r.GetTraffic()
+	}
+	if r, ok := m.(*leadlinev1.TrafficRequest); ok && r != nil {
+		return []string{r.GetRoad()}, false
 	}
 	return nil, true
 }

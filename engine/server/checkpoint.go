@@ -171,7 +171,7 @@ func (s *Server) replay(h *history, m *mapUse, cfg session.Config, beside *searc
 	var sess Session
 	var err error
 	if from == nil {
-		sess, err = s.newSession(cfg)
+		sess, err = s.newSession(h.open.GetHeader().GetTraffic(), cfg)
 	} else if sess, err = s.restoreSession(cfg, h); err != nil {
 		err = refuse(leadlinev1.Reason_REASON_JOURNAL_DAMAGED, on, "the checkpoint of drive %q of vehicle %q, by version %s, cannot be used: %v, and the records before it are gone: use that version, or open another drive, with replace", h.open.GetDrive(), h.vehicle(), from.Version, err)
 	}
@@ -186,7 +186,7 @@ func (s *Server) replay(h *history, m *mapUse, cfg session.Config, beside *searc
 	if h.check != nil {
 		o.subject.recomputed = h.check.Recomputed || h.check.Build != s.cfg.Build
 	}
-	s.hub.begin(o.subject)
+	s.begins(o)
 	if from != nil {
 		o.goOn(from)
 	}
@@ -210,6 +210,9 @@ func (s *Server) restoreSession(cfg session.Config, h *history) (Session, error)
 		if state, err = unpacker().DecodeAll(state, nil); err != nil {
 			return nil, err
 		}
+	}
+	if h.open.GetHeader().GetTraffic() {
+		return restoreRoad(cfg.Suite, state)
 	}
 	return s.cfg.RestoreSession(cfg, state)
 }

@@ -232,6 +232,16 @@ func (l Limits) withDefaults() Limits {
 	return l
 }
 
+// hears reports whether a suite describes a road, whose traffic needs no map.
+func (c *Config) hears() bool {
+	for _, s := range c.Suites {
+		if s != nil && len(s.Traffic.Road) > 0 {
+			return true
+		}
+	}
+	return false
+}
+
 // Validate lists everything that is wrong with the configuration.
 func (c *Config) Validate() error {
 	var errs []error
@@ -250,8 +260,8 @@ func (c *Config) Validate() error {
 	}
 	if c.Uploads != nil {
 		errs = append(errs, c.Uploads.validate()...)
-	} else if len(c.Maps) == 0 && c.Share == nil {
-		errs = append(errs, errors.New("server: no map: give at least one"))
+	} else if len(c.Maps) == 0 && c.Share == nil && !c.hears() {
+		errs = append(errs, errors.New("server: no map: give at least one, or a suite that describes a road"))
 	}
 	if c.KeepFor != 0 && c.KeepFor < time.Second {
 		errs = append(errs, fmt.Errorf("server: what was measured is to be kept for %v: give a second or more, or 0", c.KeepFor))

@@ -58,6 +58,7 @@ func (o *owner) takeBatch(b *leadlinev1.Batch) {
 	o.sequence = b.GetSequence()
 	o.measured()
 	o.tell(&n)
+	o.heard.tell()
 	o.receipt(r)
 }
 
@@ -227,6 +228,10 @@ func (o *owner) closing() *leadlinev1.Closed {
 	}
 	if p := o.sess.Latest(); p != nil {
 		c.Posterior = o.message(p)
+	}
+	if r, ok := o.sess.(*roadSession); ok {
+		c.Traffic, c.PosteriorSha256 = o.picture(r, briefly), ""
+		o.heard.tell()
 	}
 	return c
 }

@@ -30,7 +30,7 @@ var plain = map[string]any{
 	"seconds": int64(began/1e9) + 3, "nanos": int32(0), "map": "sea", "vehicle": "v", "vehicles": "v",
 	"region_fractions": 0.5, "integrity_risk": 0.01, "depth_below_transducer_m": 20.0, "page_token": "", "resume_token": "",
 	"area_probability": 0.5, "predict_to_now": false, "check": false, "replace": true, "status_changes_only": false,
-	"detail": protoreflect.EnumNumber(leadlinev1.Detail_DETAIL_REGION), "sha256": strings.Repeat("0", 64),
+	"traffic": false, "flow_s": 600.0, "road": "road", "detail": protoreflect.EnumNumber(leadlinev1.Detail_DETAIL_REGION), "sha256": strings.Repeat("0", 64),
 	"acknowledged": uint64(0), "route_file": []byte(`{"type":"LineString","coordinates":[[5,53],[5.01,53]]}`),
 }
 
@@ -326,7 +326,11 @@ func TestFields(t *testing.T) {
 	const name, cells = "x", 1000 // x is every name in the requests; few cells cost little
 	lon, lat := 5.1, 53.1
 	suite := &sensor.Suite{Beacons: []sensor.Place{{ID: name, LonDeg: &lon, LatDeg: &lat}}, Posts: []sensor.Post{{ID: name, LonDeg: &lon, LatDeg: &lat}}}
-	_, conn := serve(t, Config{MaxCells: cells, Suites: map[string]*sensor.Suite{name: suite}, Limits: Limits{Vehicles: 5000}, Uploads: (&shelf{}).uploads(t.TempDir()), Results: resultsIn(t, "x")})
+	listens, err := sensor.ParseSuite("road", []byte(roadSuite))
+	if err != nil {
+		t.Fatal(err)
+	}
+	_, conn := serve(t, Config{MaxCells: cells, Suites: map[string]*sensor.Suite{name: suite, "road": listens}, Limits: Limits{Vehicles: 5000}, Uploads: (&shelf{}).uploads(t.TempDir()), Results: resultsIn(t, "x")})
 	v, err := client.Open(limited(t), conn, client.Drive{Header: header("v"), Name: "x", Batch: 1}) // ended by EndDrive
 	if err != nil {
 		t.Fatal(err)
@@ -335,6 +339,13 @@ func TestFields(t *testing.T) {
 		if err := v.Send(wire.FromEvent(ev)); err != nil {
 			t.Fatal(err)
 		}
+	}
+	road, err := client.Open(t.Context(), conn, client.Drive{Header: &leadlinev1.DriveHeader{Vehicle: "road", Suite: "road", Traffic: true}})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if _, err := road.Close(); err != nil {
+		t.Fatal(err)
 	}
 	beside := voyage(2, 20)
 	want, _, _ := replayedIn(t, cells, beside)

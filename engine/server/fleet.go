@@ -56,7 +56,7 @@ func (s *Server) listHere(req *leadlinev1.ListVehiclesRequest, after string, siz
 	defer s.mu.Unlock()
 	for _, name := range slices.Sorted(maps.Keys(s.owners)) {
 		o := s.owners[name]
-		if name <= after || req.GetMap() != "" && o.m.Name != req.GetMap() {
+		if name <= after || req.GetMap() != "" && o.m.Name != req.GetMap() || req.GetTraffic() != o.header.GetTraffic() {
 			continue
 		}
 		if len(resp.GetVehicles()) == size {
@@ -72,9 +72,9 @@ func (s *Server) listHere(req *leadlinev1.ListVehiclesRequest, after string, siz
 // may be busy. The server's lock is held.
 func (o *owner) describe(now time.Time) *leadlinev1.Vehicle {
 	v := &leadlinev1.Vehicle{
-		Vehicle: o.vehicle, Drive: o.drive, Map: o.m.Name, MapFingerprint: o.m.Space.Fingerprint(),
+		Vehicle: o.vehicle, Drive: o.drive, Map: o.m.Name, MapFingerprint: o.m.fingerprint(),
 		Suite: o.header.GetSuite(), OpenedAt: timestamppb.New(o.openedAt), Connected: o.streams > 0, Ended: o.finished,
-		NewerMapFingerprint: o.srv.atlas.newer(o.m.Name, o.m.Space.Fingerprint()),
+		NewerMapFingerprint: o.srv.atlas.newer(o.m.Name, o.m.fingerprint()),
 	}
 	if p := o.latest.Load(); p != nil {
 		v.Status, v.Time = statuses[p.Status], wire.FromTime(sensor.Time(p.TimeNS))

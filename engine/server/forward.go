@@ -64,6 +64,8 @@ func (s *Server) routed(method string, handle grpc.UnaryHandler) grpc.UnaryHandl
 	}
 	var pass onePass
 	switch method {
+	case leadlinev1.PositionService_Traffic_FullMethodName:
+		pass = passing(leadlinev1.PositionServiceClient.Traffic)
 	case leadlinev1.PositionService_Trail_FullMethodName:
 		pass = passing(leadlinev1.PositionServiceClient.Trail)
 	case leadlinev1.PositionService_AddSighting_FullMethodName:
@@ -76,7 +78,13 @@ func (s *Server) routed(method string, handle grpc.UnaryHandler) grpc.UnaryHandl
 		return handle
 	}
 	return func(ctx context.Context, req any) (any, error) {
-		vehicle := req.(interface{ GetVehicle() string }).GetVehicle()
+		var vehicle string
+		switch r := req.(type) {
+		case interface{ GetVehicle() string }:
+			vehicle = r.GetVehicle()
+		case interface{ GetRoad() string }:
+			vehicle = r.GetRoad()
+		}
 		if vehicle == "" {
 			return handle(ctx, req) // which says so
 		}

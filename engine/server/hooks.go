@@ -19,11 +19,22 @@ func (o *owner) newSubject() *subject {
 		suite = &sensor.Suite{}
 	}
 	v := suite.For(dim).Vehicle
-	return &subject{
+	sub := &subject{
 		vehicle: o.vehicle, drive: o.drive, onMap: o.m.Map, poke: make(chan struct{}, 1),
 		// Within the window, and as long as what is computed again then may
 		// take; twice that, since it costs little.
 		lateNS: int64(2e9 * (v.LateWindowS + v.HoldS)),
+	}
+	if _, road := o.sess.(*roadSession); road {
+		sub.gone, sub.end = true, &leadlinev1.Farewell{} // those who follow vehicles hear nothing of it
+	}
+	return sub
+}
+
+// begins has those who follow hear of a drive.
+func (s *Server) begins(o *owner) {
+	if !o.subject.gone {
+		s.hub.begin(o.subject)
 	}
 }
 

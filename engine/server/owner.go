@@ -62,6 +62,7 @@ type owner struct {
 	extras     *extras // for those who follow
 	trail      trail
 	alarms     map[alarmKey]uint64 // on record, with their numbers
+	heard      broadcast           // of a road: there is news
 }
 
 // attachment joins a stream to an owner.
@@ -259,7 +260,7 @@ func (o *owner) take(a *attachment) {
 		return
 	}
 	o.say(&leadlinev1.FeedResponse{Message: &leadlinev1.FeedResponse_Opened{Opened: &leadlinev1.Opened{
-		Sequence: o.sequence, MapFingerprint: o.m.Space.Fingerprint(),
+		Sequence: o.sequence, MapFingerprint: o.m.fingerprint(),
 		MaxBatch:        uint32(o.srv.cfg.Limits.BatchMeasurements),
 		MaxMessageBytes: uint32(o.srv.cfg.Limits.MessageBytes),
 		Version:         o.srv.cfg.Version,

@@ -235,7 +235,7 @@ func (s *Server) record(o *owner, opened openedRecord) {
 func (s *Server) opening(req *leadlinev1.Open, m *mapUse) (openedRecord, error) {
 	out := openedRecord{
 		Version: s.cfg.Version, Build: s.cfg.Build, OpenedAt: s.cfg.Now().UTC(),
-		Fingerprint: m.Space.Fingerprint(), MaxCells: s.cfg.MaxCells,
+		Fingerprint: m.fingerprint(), MaxCells: s.cfg.MaxCells,
 	}
 	var err error
 	if out.Open, err = proto.Marshal(req); err != nil {

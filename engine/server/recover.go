@@ -245,7 +245,10 @@ func (s *Server) revive(h *history) (o *owner, err error) {
 	if lost := h.lost(); lost != "" {
 		return nil, refuse(leadlinev1.Reason_REASON_JOURNAL_DAMAGED, on, "drive %q of vehicle %q is damaged in the server's journal: %s: open another drive, with replace", h.open.GetDrive(), h.vehicle(), lost)
 	}
-	m := s.atlas.acquireFingerprint(h.open.GetHeader().GetMap(), h.opened.Fingerprint)
+	m := &mapUse{sessions: 1} // of a road's traffic
+	if !h.open.GetHeader().GetTraffic() {
+		m = s.atlas.acquireFingerprint(h.open.GetHeader().GetMap(), h.opened.Fingerprint)
+	}
 	if m == nil && s.shared != nil {
 		if m, err = s.fetchMap(context.Background(), h.open.GetHeader().GetMap(), h.opened.Fingerprint, false); err != nil {
 			s.cfg.Log.Error("map cannot be had from other servers", "map", h.open.GetHeader().GetMap(), "error", err)

@@ -14,8 +14,20 @@ import (
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
-// onRoads reports whether the map is made of roads.
+// fingerprint is that of the map's space. A road's traffic has none: what it is on,
+// its suite describes.
+func (m Map) fingerprint() string {
+	if m.Space == nil {
+		return ""
+	}
+	return m.Space.Fingerprint()
+}
+
+// onRoads reports whether the map is made of roads, as a road's traffic is.
 func (m Map) onRoads() bool {
+	if m.Space == nil {
+		return true
+	}
 	_, ok := m.Space.(filter.LineSpace)
 	return ok
 }
@@ -36,9 +48,11 @@ func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error)
 	if _, ok := leadlinev1.Reply_name[int32(req.GetReply())]; !ok {
 		return nil, badField("open.reply", "open: reply is %d: give one of those that feed.proto names", req.GetReply())
 	}
-	m := s.mapNamed(ctx, h.Map)
-	if m == nil {
-		return nil, s.unknownMap(h.Map)
+	m := &mapUse{sessions: 1} // of a road's traffic
+	if !h.Traffic {
+		if m = s.mapNamed(ctx, h.Map); m == nil {
+			return nil, s.unknownMap(h.Map)
+		}
 	}
 	defer s.releaseMap(m) // the owner holds it for itself
 	suite := s.cfg.Suites[h.Suite]
@@ -66,7 +80,7 @@ func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error)
 		return nil, badField("open", "open: %v", err)
 	}
 	beside := &searches{slots: s.searching, waiting: &s.searchesWaiting}
-	sess, err := s.newSession(session.Config{
+	sess, err := s.newSession(h.Traffic, session.Config{
 		Vehicle: h.Vehicle, Space: m.Space, Names: m.Names, Suite: suite,
 		Start: start(h.Start), MaxCells: s.cfg.MaxCells, Begin: beside.begin, Desks: &s.desks,
 	})
@@ -78,14 +92,18 @@ func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error)
 }
 
 // newSession makes a session, and turns whatever goes wrong into a status.
-func (s *Server) newSession(c session.Config) (sess Session, err error) {
+func (s *Server) newSession(road bool, c session.Config) (sess Session, err error) {
 	defer func() {
 		if r := recover(); r != nil {
 			s.cfg.Log.Error("session cannot be made", "vehicle", c.Vehicle, "panic", r, "stack", string(debug.Stack()))
 			err = refuse(leadlinev1.Reason_REASON_SESSION_FAILED, about{"vehicle": c.Vehicle}, "open: the session of vehicle %q failed: report it with the server's log", c.Vehicle)
 		}
 	}()
-	sess, err = s.cfg.NewSession(c)
+	if road {
+		sess, err = newRoadSession(c.Suite)
+	} else {
+		sess, err = s.cfg.NewSession(c)
+	}
 	if err != nil {
 		return nil, refuse(leadlinev1.Reason_REASON_BAD_START, about{"vehicle": c.Vehicle}, "open: header: %v", err)
 	}
@@ -156,7 +174,7 @@ func (s *Server) admit(req *leadlinev1.Open, m *mapUse, sess Session, beside *se
 	s.record(o, opened)
 	s.owners[vehicle] = o
 	s.atlas.hold(m)
-	s.hub.begin(o.subject)
+	s.begins(o)
 	s.ended.Add(1)
 	o.log.Info("drive opened", "map", m.Name, "suite", req.GetHeader().GetSuite())
 	go o.run()

@@ -41,6 +41,7 @@ type Server struct {
 	pace            *rate.Limiter // of all vehicles' measurements
 	serving         atomic.Bool   // it has begun to listen
 	streams         atomic.Int64
+	roadFollowers   atomic.Int64
 	drawing         chan struct{} // and one a map being drawn
 	forecasting     chan struct{} // and one a forecast being made
 	readingResults  chan struct{} // and one a result being read

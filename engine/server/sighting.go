@@ -34,6 +34,9 @@ func (s *Server) AddSighting(ctx context.Context, req *leadlinev1.AddSightingReq
 		}
 	}
 	o, err := s.find(req.GetVehicle())
+	if err == nil {
+		err = o.noRoad()
+	}
 	if err != nil {
 		return nil, err
 	}

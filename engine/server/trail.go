@@ -82,6 +82,9 @@ func (s *Server) Trail(ctx context.Context, req *leadlinev1.TrailRequest) (*lead
 		return nil, badField("vehicle", "vehicle is missing: give the name that it is fed under")
 	}
 	o, err := s.find(req.GetVehicle())
+	if err == nil {
+		err = o.noRoad()
+	}
 	if err != nil {
 		return nil, err
 	}

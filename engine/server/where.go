@@ -100,6 +100,9 @@ func (s *Server) question(req *leadlinev1.WhereRequest) (*question, error) {
 // ask puts a question to a vehicle; what goes wrong is its answer.
 func (s *Server) ask(ctx context.Context, vehicle string, q *question) *leadlinev1.WhereAnswer {
 	o, err := s.find(vehicle)
+	if err == nil {
+		err = o.noRoad()
+	}
 	if err != nil {
 		return &leadlinev1.WhereAnswer{Vehicle: vehicle, Failure: failure(err)}
 	}

@@ -19,11 +19,12 @@ type Filter struct {
 	tracks  []*track // by label
 	lines   []line
 	now     sensor.Time
+	began   sensor.Time
 	started bool
 	work    work
 	last    uint64 // label
 	account Account
-	notes   []string
+	doubts  []Doubt // of where posts stand
 }
 
 // Account is what was not kept, in expected vehicles, and what could not be used.
@@ -77,7 +78,7 @@ func New(road *Road, posts []Post, model Model, lines ...float64) (*Filter, erro
 		}
 		e := newEar(road, p, model.soundMPS(), model.ReachM)
 		f.ears = append(f.ears, e)
-		f.notes = append(f.notes, e.doubts(&model)...)
+		f.doubts = append(f.doubts, e.doubts(&model)...)
 	}
 	for _, at := range lines {
 		if !(at >= lineMarginM && at <= road.lengthM-lineMarginM) {
@@ -128,7 +129,7 @@ func (f *Filter) advance(to sensor.Time) {
 	dtS := float64(to-f.now) * 1e-9
 	f.now = to
 	if !f.started {
-		f.started = true
+		f.started, f.began = true, to
 		return
 	}
 	if dtS <= 0 {
@@ -175,9 +176,6 @@ func (f *Filter) Now() sensor.Time { return f.now }
 
 // Account is what was not kept so far.
 func (f *Filter) Account() Account { return f.account }
-
-// Notes say what is doubtful about the posts.
-func (f *Filter) Notes() []string { return slices.Clone(f.notes) }
 
 // Road is the stretch that is listened to.
 func (f *Filter) Road() *Road { return f.road }

@@ -204,7 +204,7 @@ func TestUnseenStays(t *testing.T) {
 // TestBudget: more vehicles than the budget are not followed, and said; the rest
 // go on.
 func TestBudget(t *testing.T) {
-	r, f := stretch(t, Model{MaxVehicles: 1})
+	r, f := stretch(t, Model{Traffic: sensor.Traffic{MaxVehicles: 1}})
 	a := sim.Pass(sim.Random(1, sim.StreamTraffic), 1, 0, 60, 0.3, func(float64) float64 { return 14 })
 	b := sim.Pass(sim.Random(2, sim.StreamTraffic), 4, 400, 60, 0.3, func(float64) float64 { return -14 })
 	for _, h := range r.Listen(sim.Random(1, sim.StreamHearing), 0, 12, []sim.Passing{a, b}) {
@@ -335,7 +335,13 @@ func TestWatch(t *testing.T) {
 	if vs := f.Picture(0.5).Vehicles; len(before.Vehicles) != 1 || len(vs) != 0 {
 		t.Errorf("%d vehicles, and %d after half a minute of silence", len(before.Vehicles), len(vs))
 	}
-	if q := strings.Join(w.Quiet(), " "); q != "p0 p1 p2" {
-		t.Errorf("quiet: %q", q)
+	quiet := ""
+	for _, d := range w.Doubts() {
+		if d.Kind == Silent {
+			quiet += d.Post + " "
+		}
+	}
+	if quiet != "p0 p1 p2 " {
+		t.Errorf("quiet: %q", quiet)
 	}
 }

@@ -20,18 +20,13 @@ type Model struct {
 	// LateralM is the standard deviation of a vehicle's distance from the
 	// centreline; 0 says that it keeps to it.
 	LateralM float64
-	// MaxVehicles is the greatest number of vehicles, or what may be one, that
-	// are followed at once: 256. MaxCells of each one's grid: 8192.
-	MaxVehicles int
-	MaxCells    int
+	// MaxCells is the greatest number of cells of a vehicle's grid: 8192.
+	MaxCells int
 }
 
 // Filled is the model with its defaults.
 func (m Model) Filled() Model {
 	m.Traffic = m.Traffic.Filled()
-	if m.MaxVehicles == 0 {
-		m.MaxVehicles = 256
-	}
 	if m.MaxCells == 0 {
 		m.MaxCells = 8192
 	}
@@ -48,7 +43,6 @@ func (m Model) Check() error {
 	}
 	in("the air's temperature", m.AirTemperatureC, -90, 60)
 	in("the distance from the centreline", m.LateralM, 0, 100)
-	in("the number of vehicles", float64(m.MaxVehicles), 1, 10_000)
 	in("the number of cells", float64(m.MaxCells), 512, 1<<20)
 	return errors.Join(errs...)
 }

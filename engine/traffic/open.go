@@ -56,6 +56,11 @@ var ErrOther = errors.New("posts alone count here")
 // Take takes an event of a watch that Open made: the bearing of a post. One that
 // is refused changes nothing.
 func (w *Watch) Take(ev sensor.Event) error {
+	if b, ok := ev.Measurement.(sensor.AcousticBearing); ok && w.filter.ear(b.Post) == nil {
+		w.unknown++
+		w.unknownPost = b.Post
+		return fmt.Errorf("post %q is none of this road's: name one of its posts, or add it to the suite", b.Post)
+	}
 	ev, err := w.suite.Prepare(ev)
 	if err != nil {
 		return err
@@ -65,9 +70,6 @@ func (w *Watch) Take(ev sensor.Event) error {
 		return fmt.Errorf("sensor %q sent a %s: %w", ev.Sensor, ev.Measurement.Kind(), ErrOther)
 	}
 	e := w.filter.ear(b.Post)
-	if e == nil {
-		return fmt.Errorf("post %q is none of this road's: name one of its posts", b.Post)
-	}
 	gamma, _ := w.filter.road.frame.Convergence(e.post.At)
 	return w.Add(Said{
 		Time: ev.Time, Post: b.Post, Sensor: ev.Sensor, Number: ev.Number,

@@ -42,6 +42,32 @@ type Count struct {
 	Recent                    []Crossing
 }
 
+// Flow is what passed a line an hour, forward and backward, over the last windowS,
+// or since the first scan, or as far back as Recent reaches; and over how long
+// that is. Before that is a minute it is none.
+func (f *Filter) Flow(line int, windowS float64) (forward, backward, overS float64) {
+	since := max(f.now-seconds(windowS), f.began)
+	recent := f.lines[line].recent
+	if len(recent) == mostCrossings {
+		since = max(since, recent[0].Time)
+	}
+	if overS = float64(f.now-since) * 1e-9; overS < leastFlowS {
+		return 0, 0, overS
+	}
+	for _, c := range recent {
+		switch {
+		case c.Time <= since:
+		case c.Forward:
+			forward++
+		default:
+			backward++
+		}
+	}
+	return forward * 3600 / overS, backward * 3600 / overS, overS
+}
+
+const leastFlowS = 60
+
 // Picture returns the vehicles that exist with a probability or more.
 func (f *Filter) Picture(leastExistence float64) Picture {
 	p := Picture{Time: f.now, Unseen: f.unseen.total()}

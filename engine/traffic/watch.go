@@ -25,6 +25,11 @@ type Watch struct {
 	done    sensor.Time // scans up to here are given to the filter
 	began   bool
 	posts   []hearing // by ear
+	ahead   ahead
+	// Of what was refused: bearings of posts that are unknown, and the last such
+	// post; those that were held and dropped.
+	unknown, dropped int
+	unknownPost      string
 }
 
 // Said is what a post says: one bearing. What agrees in time, post, sensor and
@@ -43,8 +48,12 @@ type hearing struct {
 	deaf        bool
 }
 
-// ErrLate is a bearing of a time that is already done with.
-var ErrLate = errors.New("too late")
+// ErrLate is a bearing of a time that is already done with, ErrOverfull one too
+// many that waits.
+var (
+	ErrLate     = errors.New("too late")
+	ErrOverfull = errors.New("too many")
+)
 
 const (
 	// maxPending bearings wait to be put in order.
@@ -82,12 +91,22 @@ func (w *Watch) Add(s Said) error {
 		return fmt.Errorf("post %q: a bearing that came %.3f s after its time's turn: send within %.3g s, or let the post's clock be set: %w",
 			s.Post, float64(w.done-s.Time)*1e-9, float64(w.hold)*1e-9, ErrLate)
 	}
+	for _, s := range w.lead(s) {
+		if err := w.enter(s); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// enter puts a bearing among those that wait for their turn.
+func (w *Watch) enter(s Said) error {
 	at, twice := slices.BinarySearchFunc(w.pending, s, w.compare)
 	if twice {
 		return nil
 	}
 	if len(w.pending) >= maxPending {
-		return fmt.Errorf("%d bearings wait to be put in order, no more are taken: wait less than %.3g s for late ones", maxPending, float64(w.hold)*1e-9)
+		return fmt.Errorf("%d bearings wait to be put in order, no more are taken: wait less than %.3g s for late ones: %w", maxPending, float64(w.hold)*1e-9, ErrOverfull)
 	}
 	w.pending = slices.Insert(w.pending, at, s)
 	w.newest = max(w.newest, s.Time)
@@ -95,7 +114,14 @@ func (w *Watch) Add(s Said) error {
 }
 
 // Flush waits for nothing more.
-func (w *Watch) Flush() error { return w.release(w.newest) }
+func (w *Watch) Flush() error {
+	w.drop()
+	return w.release(w.newest)
+}
+
+// Dropped is how many bearings that were taken at first were then refused: they
+// came from a post whose clock was ahead.
+func (w *Watch) Dropped() int { return w.dropped }
 
 func (w *Watch) compare(a, b Said) int {
 	return cmp.Or(cmp.Compare(a.Time, b.Time), cmp.Compare(a.Post, b.Post), cmp.Compare(a.Sensor, b.Sensor), cmp.Compare(a.Number, b.Number))
@@ -159,15 +185,4 @@ func (w *Watch) silent(to sensor.Time) error {
 		}
 		p.next += w.period
 	}
-}
-
-// Quiet names the posts that have said nothing for so long that they are taken
-// for out of order.
-func (w *Watch) Quiet() (ids []string) {
-	for i, p := range w.posts {
-		if p.deaf {
-			ids = append(ids, w.filter.ears[i].post.ID)
-		}
-	}
-	return ids
 }

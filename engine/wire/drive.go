@@ -17,6 +17,8 @@ import (
 type Header struct {
 	Vehicle, Map, Suite string
 	Start               Start
+	// Traffic says that it is a road's, by that name: it has no map and no start.
+	Traffic bool
 }
 
 // Start is what is known of the position at the beginning: near Point with
@@ -30,7 +32,7 @@ type Start struct {
 
 // ToHeader converts a header. The vehicle is required.
 func ToHeader(m *leadlinev1.DriveHeader) (Header, error) {
-	h := Header{Vehicle: m.GetVehicle(), Map: m.GetMap(), Suite: m.GetSuite()}
+	h := Header{Vehicle: m.GetVehicle(), Map: m.GetMap(), Suite: m.GetSuite(), Traffic: m.GetTraffic()}
 	if h.Vehicle == "" {
 		return h, errors.New("vehicle is missing: give the vehicle a name")
 	}
@@ -42,12 +44,15 @@ func ToHeader(m *leadlinev1.DriveHeader) (Header, error) {
 	if err != nil {
 		return h, fmt.Errorf("start: %w", err)
 	}
+	if h.Traffic && (h.Map != "" || h.Start.SigmaM > 0 || len(h.Start.Area) > 0) {
+		return h, errors.New("traffic has no map and no start: its suite describes the road; leave them out")
+	}
 	return h, nil
 }
 
 // FromHeader is the inverse of ToHeader.
 func FromHeader(h Header) *leadlinev1.DriveHeader {
-	return &leadlinev1.DriveHeader{Vehicle: h.Vehicle, Map: h.Map, Suite: h.Suite, Start: FromStart(h.Start)}
+	return &leadlinev1.DriveHeader{Vehicle: h.Vehicle, Map: h.Map, Suite: h.Suite, Start: FromStart(h.Start), Traffic: h.Traffic}
 }
 
 // ToStart converts a start; nil and an empty one mean anywhere.

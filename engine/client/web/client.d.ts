@@ -36,6 +36,16 @@ export class Client {
             input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/follow_pb.js").FollowRequest>;
             output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/follow_pb.js").FollowResponse>;
         };
+        traffic: {
+            methodKind: "unary";
+            input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/traffic_pb.js").TrafficRequest>;
+            output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/traffic_pb.js").TrafficResponse>;
+        };
+        followTraffic: {
+            methodKind: "server_streaming";
+            input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/traffic_pb.js").FollowTrafficRequest>;
+            output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/traffic_pb.js").FollowTrafficResponse>;
+        };
         trail: {
             methodKind: "unary";
             input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/trail_pb.js").TrailRequest>;

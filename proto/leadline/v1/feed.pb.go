@@ -32,7 +32,7 @@ const (
 	Reply_REPLY_LATEST Reply = 1
 	// All; while the server is overloaded the last one that each batch released.
 	Reply_REPLY_EVERY Reply = 2
-	// None; ask for them with Where.
+	// None; ask for them with Where, or of a road with Traffic: it has none.
 	Reply_REPLY_NONE Reply = 3
 )
 
@@ -183,7 +183,8 @@ func (*FeedRequest_End) isFeedRequest_Message() {}
 // Open names the drive that a stream carries.
 type Open struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
-	// Vehicle, map, suite and start. The map is required here.
+	// Vehicle, map, suite and start. The map is required here; of traffic the suite
+	// is.
 	Header *DriveHeader `protobuf:"bytes,1,opt,name=header,proto3" json:"header,omitempty"`
 	// The client's name for this drive, a new one for each. Opening the same
 	// drive again with the same header continues it. Required.
@@ -749,7 +750,10 @@ type Closed struct {
 	// Measurements refused over the whole drive.
 	Refused uint64 `protobuf:"varint,5,opt,name=refused,proto3" json:"refused,omitempty"`
 	// The server's version.
-	Version       string `protobuf:"bytes,6,opt,name=version,proto3" json:"version,omitempty"`
+	Version string `protobuf:"bytes,6,opt,name=version,proto3" json:"version,omitempty"`
+	// Of a road's traffic: the last picture, with vehicles that exist with 1/2 or
+	// more. It has no posteriors.
+	Traffic       *TrafficPicture `protobuf:"bytes,7,opt,name=traffic,proto3" json:"traffic,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -826,11 +830,18 @@ func (x *Closed) GetVersion() string {
 	return ""
 }
 
+func (x *Closed) GetTraffic() *TrafficPicture {
+	if x != nil {
+		return x.Traffic
+	}
+	return nil
+}
+
 var File_leadline_v1_feed_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_feed_proto_rawDesc = "" +
 	"\n" +
-	"\x16leadline/v1/feed.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/drive.proto\x1a\x1dleadline/v1/measurement.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x18leadline/v1/reason.proto\"\x93\x01\n" +
+	"\x16leadline/v1/feed.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/drive.proto\x1a\x1dleadline/v1/measurement.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x18leadline/v1/reason.proto\x1a\x19leadline/v1/traffic.proto\"\x93\x01\n" +
 	"\vFeedRequest\x12'\n" +
 	"\x04open\x18\x01 \x01(\v2\x11.leadline.v1.OpenH\x00R\x04open\x12*\n" +
 	"\x05batch\x18\x02 \x01(\v2\x12.leadline.v1.BatchH\x00R\x05batch\x12$\n" +
@@ -870,7 +881,7 @@ const file_leadline_v1_feed_proto_rawDesc = "" +
 	"\x06sensor\x18\x03 \x01(\tR\x06sensor\x12\x16\n" +
 	"\x06number\x18\x04 \x01(\x04R\x06number\x12+\n" +
 	"\x06reason\x18\x05 \x01(\x0e2\x13.leadline.v1.ReasonR\x06reason\x12\x16\n" +
-	"\x06detail\x18\x06 \x01(\tR\x06detail\"\xd9\x01\n" +
+	"\x06detail\x18\x06 \x01(\tR\x06detail\"\x90\x02\n" +
 	"\x06Closed\x124\n" +
 	"\tposterior\x18\x01 \x01(\v2\x16.leadline.v1.PosteriorR\tposterior\x12\x1e\n" +
 	"\n" +
@@ -879,7 +890,8 @@ const file_leadline_v1_feed_proto_rawDesc = "" +
 	"\x10posterior_sha256\x18\x03 \x01(\tR\x0fposteriorSha256\x12\x1a\n" +
 	"\baccepted\x18\x04 \x01(\x04R\baccepted\x12\x18\n" +
 	"\arefused\x18\x05 \x01(\x04R\arefused\x12\x18\n" +
-	"\aversion\x18\x06 \x01(\tR\aversion*Q\n" +
+	"\aversion\x18\x06 \x01(\tR\aversion\x125\n" +
+	"\atraffic\x18\a \x01(\v2\x1b.leadline.v1.TrafficPictureR\atraffic*Q\n" +
 	"\x05Reply\x12\x15\n" +
 	"\x11REPLY_UNSPECIFIED\x10\x00\x12\x10\n" +
 	"\fREPLY_LATEST\x10\x01\x12\x0f\n" +
@@ -918,6 +930,7 @@ var file_leadline_v1_feed_proto_goTypes = []any{
 	(*Withdrawn)(nil),             // 13: leadline.v1.Withdrawn
 	(*timestamppb.Timestamp)(nil), // 14: google.protobuf.Timestamp
 	(Reason)(0),                   // 15: leadline.v1.Reason
+	(*TrafficPicture)(nil),        // 16: leadline.v1.TrafficPicture
 }
 var file_leadline_v1_feed_proto_depIdxs = []int32{
 	2,  // 0: leadline.v1.FeedRequest.open:type_name -> leadline.v1.Open
@@ -935,11 +948,12 @@ var file_leadline_v1_feed_proto_depIdxs = []int32{
 	14, // 12: leadline.v1.Refusal.time:type_name -> google.protobuf.Timestamp
 	15, // 13: leadline.v1.Refusal.reason:type_name -> leadline.v1.Reason
 	12, // 14: leadline.v1.Closed.posterior:type_name -> leadline.v1.Posterior
-	15, // [15:15] is the sub-list for method output_type
-	15, // [15:15] is the sub-list for method input_type
-	15, // [15:15] is the sub-list for extension type_name
-	15, // [15:15] is the sub-list for extension extendee
-	0,  // [0:15] is the sub-list for field type_name
+	16, // 15: leadline.v1.Closed.traffic:type_name -> leadline.v1.TrafficPicture
+	16, // [16:16] is the sub-list for method output_type
+	16, // [16:16] is the sub-list for method input_type
+	16, // [16:16] is the sub-list for extension type_name
+	16, // [16:16] is the sub-list for extension extendee
+	0,  // [0:16] is the sub-list for field type_name
 }
 
 func init() { file_leadline_v1_feed_proto_init() }
@@ -951,6 +965,7 @@ func file_leadline_v1_feed_proto_init() {
 	file_leadline_v1_measurement_proto_init()
 	file_leadline_v1_posterior_proto_init()
 	file_leadline_v1_reason_proto_init()
+	file_leadline_v1_traffic_proto_init()
 	file_leadline_v1_feed_proto_msgTypes[0].OneofWrappers = []any{
 		(*FeedRequest_Open)(nil),
 		(*FeedRequest_Batch)(nil),

@@ -30,7 +30,10 @@ type ListVehiclesRequest struct {
 	// The most vehicles in an answer; 100 if left out, at most 1000.
 	PageSize uint32 `protobuf:"varint,2,opt,name=page_size,json=pageSize,proto3" json:"page_size,omitempty"`
 	// From the answer before, for those that follow.
-	PageToken     string `protobuf:"bytes,3,opt,name=page_token,json=pageToken,proto3" json:"page_token,omitempty"`
+	PageToken string `protobuf:"bytes,3,opt,name=page_token,json=pageToken,proto3" json:"page_token,omitempty"`
+	// Roads whose traffic is followed, in place of vehicles. They have neither map
+	// nor status; time is that of the last scan.
+	Traffic       bool `protobuf:"varint,4,opt,name=traffic,proto3" json:"traffic,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -84,6 +87,13 @@ func (x *ListVehiclesRequest) GetPageToken() string {
 		return x.PageToken
 	}
 	return ""
+}
+
+func (x *ListVehiclesRequest) GetTraffic() bool {
+	if x != nil {
+		return x.Traffic
+	}
+	return false
 }
 
 // ListVehiclesResponse lists vehicles by name.
@@ -697,12 +707,13 @@ var File_leadline_v1_fleet_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_fleet_proto_rawDesc = "" +
 	"\n" +
-	"\x17leadline/v1/fleet.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x16leadline/v1/feed.proto\x1a\x1bleadline/v1/posterior.proto\"c\n" +
+	"\x17leadline/v1/fleet.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x16leadline/v1/feed.proto\x1a\x1bleadline/v1/posterior.proto\"}\n" +
 	"\x13ListVehiclesRequest\x12\x10\n" +
 	"\x03map\x18\x01 \x01(\tR\x03map\x12\x1b\n" +
 	"\tpage_size\x18\x02 \x01(\rR\bpageSize\x12\x1d\n" +
 	"\n" +
-	"page_token\x18\x03 \x01(\tR\tpageToken\"p\n" +
+	"page_token\x18\x03 \x01(\tR\tpageToken\x12\x18\n" +
+	"\atraffic\x18\x04 \x01(\bR\atraffic\"p\n" +
 	"\x14ListVehiclesResponse\x120\n" +
 	"\bvehicles\x18\x01 \x03(\v2\x14.leadline.v1.VehicleR\bvehicles\x12&\n" +
 	"\x0fnext_page_token\x18\x02 \x01(\tR\rnextPageToken\"\x9d\x03\n" +

@@ -22,6 +22,8 @@ const (
 	PositionService_Feed_FullMethodName            = "/leadline.v1.PositionService/Feed"
 	PositionService_Where_FullMethodName           = "/leadline.v1.PositionService/Where"
 	PositionService_Follow_FullMethodName          = "/leadline.v1.PositionService/Follow"
+	PositionService_Traffic_FullMethodName         = "/leadline.v1.PositionService/Traffic"
+	PositionService_FollowTraffic_FullMethodName   = "/leadline.v1.PositionService/FollowTraffic"
 	PositionService_Trail_FullMethodName           = "/leadline.v1.PositionService/Trail"
 	PositionService_AddSighting_FullMethodName     = "/leadline.v1.PositionService/AddSighting"
 	PositionService_SeeAlarm_FullMethodName        = "/leadline.v1.PositionService/SeeAlarm"
@@ -62,6 +64,11 @@ type PositionServiceClient interface {
 	// Follow tells of vehicles as they move on, until the client has enough. A
 	// client that reads slowly is told the latest, and how much it missed.
 	Follow(ctx context.Context, in *FollowRequest, opts ...grpc.CallOption) (grpc.ServerStreamingClient[FollowResponse], error)
+	// Traffic says what is known of the vehicles on a road that posts listen to.
+	// The posts' bearings come by Feed, in a drive whose header says traffic.
+	Traffic(ctx context.Context, in *TrafficRequest, opts ...grpc.CallOption) (*TrafficResponse, error)
+	// FollowTraffic tells of them as they move on.
+	FollowTraffic(ctx context.Context, in *FollowTrafficRequest, opts ...grpc.CallOption) (grpc.ServerStreamingClient[FollowTrafficResponse], error)
 	// Trail says what a vehicle's drive was like so far.
 	Trail(ctx context.Context, in *TrailRequest, opts ...grpc.CallOption) (*TrailResponse, error)
 	// AddSighting enters what somebody says of a vehicle.
@@ -147,6 +154,35 @@ func (c *positionServiceClient) Follow(ctx context.Context, in *FollowRequest, o
 
 // This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
 type PositionService_FollowClient = grpc.ServerStreamingClient[FollowResponse]
+
+func (c *positionServiceClient) Traffic(ctx context.Context, in *TrafficRequest, opts ...grpc.CallOption) (*TrafficResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(TrafficResponse)
+	err := c.cc.Invoke(ctx, PositionService_Traffic_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *positionServiceClient) FollowTraffic(ctx context.Context, in *FollowTrafficRequest, opts ...grpc.CallOption) (grpc.ServerStreamingClient[FollowTrafficResponse], error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	stream, err := c.cc.NewStream(ctx, &PositionService_ServiceDesc.Streams[2], PositionService_FollowTraffic_FullMethodName, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	x := &grpc.GenericClientStream[FollowTrafficRequest, FollowTrafficResponse]{ClientStream: stream}
+	if err := x.ClientStream.SendMsg(in); err != nil {
+		return nil, err
+	}
+	if err := x.ClientStream.CloseSend(); err != nil {
+		return nil, err
+	}
+	return x, nil
+}
+
+// This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
+type PositionService_FollowTrafficClient = grpc.ServerStreamingClient[FollowTrafficResponse]
 
 func (c *positionServiceClient) Trail(ctx context.Context, in *TrailRequest, opts ...grpc.CallOption) (*TrailResponse, error) {
 	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
@@ -250,7 +286,7 @@ func (c *positionServiceClient) DrawMap(ctx context.Context, in *DrawMapRequest,
 
 func (c *positionServiceClient) Forecast(ctx context.Context, in *ForecastRequest, opts ...grpc.CallOption) (grpc.ServerStreamingClient[ForecastResponse], error) {
 	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
-	stream, err := c.cc.NewStream(ctx, &PositionService_ServiceDesc.Streams[2], PositionService_Forecast_FullMethodName, cOpts...)
+	stream, err := c.cc.NewStream(ctx, &PositionService_ServiceDesc.Streams[3], PositionService_Forecast_FullMethodName, cOpts...)
 	if err != nil {
 		return nil, err
 	}
@@ -309,7 +345,7 @@ func (c *positionServiceClient) DescribeSuite(ctx context.Context, in *DescribeS
 
 func (c *positionServiceClient) UploadMap(ctx context.Context, opts ...grpc.CallOption) (grpc.ClientStreamingClient[UploadMapRequest, UploadMapResponse], error) {
 	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
-	stream, err := c.cc.NewStream(ctx, &PositionService_ServiceDesc.Streams[3], PositionService_UploadMap_FullMethodName, cOpts...)
+	stream, err := c.cc.NewStream(ctx, &PositionService_ServiceDesc.Streams[4], PositionService_UploadMap_FullMethodName, cOpts...)
 	if err != nil {
 		return nil, err
 	}
@@ -342,6 +378,11 @@ type PositionServiceServer interface {
 	// Follow tells of vehicles as they move on, until the client has enough. A
 	// client that reads slowly is told the latest, and how much it missed.
 	Follow(*FollowRequest, grpc.ServerStreamingServer[FollowResponse]) error
+	// Traffic says what is known of the vehicles on a road that posts listen to.
+	// The posts' bearings come by Feed, in a drive whose header says traffic.
+	Traffic(context.Context, *TrafficRequest) (*TrafficResponse, error)
+	// FollowTraffic tells of them as they move on.
+	FollowTraffic(*FollowTrafficRequest, grpc.ServerStreamingServer[FollowTrafficResponse]) error
 	// Trail says what a vehicle's drive was like so far.
 	Trail(context.Context, *TrailRequest) (*TrailResponse, error)
 	// AddSighting enters what somebody says of a vehicle.
@@ -394,6 +435,12 @@ func (UnimplementedPositionServiceServer) Where(context.Context, *WhereRequest) 
 }
 func (UnimplementedPositionServiceServer) Follow(*FollowRequest, grpc.ServerStreamingServer[FollowResponse]) error {
 	return status.Error(codes.Unimplemented, "method Follow not implemented")
+}
+func (UnimplementedPositionServiceServer) Traffic(context.Context, *TrafficRequest) (*TrafficResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method Traffic not implemented")
+}
+func (UnimplementedPositionServiceServer) FollowTraffic(*FollowTrafficRequest, grpc.ServerStreamingServer[FollowTrafficResponse]) error {
+	return status.Error(codes.Unimplemented, "method FollowTraffic not implemented")
 }
 func (UnimplementedPositionServiceServer) Trail(context.Context, *TrailRequest) (*TrailResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method Trail not implemented")
@@ -499,6 +546,35 @@ func _PositionService_Follow_Handler(srv interface{}, stream grpc.ServerStream) 
 
 // This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
 type PositionService_FollowServer = grpc.ServerStreamingServer[FollowResponse]
+
+func _PositionService_Traffic_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(TrafficRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).Traffic(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_Traffic_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).Traffic(ctx, req.(*TrafficRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _PositionService_FollowTraffic_Handler(srv interface{}, stream grpc.ServerStream) error {
+	m := new(FollowTrafficRequest)
+	if err := stream.RecvMsg(m); err != nil {
+		return err
+	}
+	return srv.(PositionServiceServer).FollowTraffic(m, &grpc.GenericServerStream[FollowTrafficRequest, FollowTrafficResponse]{ServerStream: stream})
+}
+
+// This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
+type PositionService_FollowTrafficServer = grpc.ServerStreamingServer[FollowTrafficResponse]
 
 func _PositionService_Trail_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
 	in := new(TrailRequest)
@@ -782,6 +858,10 @@ var PositionService_ServiceDesc = grpc.ServiceDesc{
 			Handler:    _PositionService_Where_Handler,
 		},
 		{
+			MethodName: "Traffic",
+			Handler:    _PositionService_Traffic_Handler,
+		},
+		{
 			MethodName: "Trail",
 			Handler:    _PositionService_Trail_Handler,
 		},
@@ -848,6 +928,11 @@ var PositionService_ServiceDesc = grpc.ServiceDesc{
 		{
 			StreamName:    "Follow",
 			Handler:       _PositionService_Follow_Handler,
+			ServerStreams: true,
+		},
+		{
+			StreamName:    "FollowTraffic",
+			Handler:       _PositionService_FollowTraffic_Handler,
 			ServerStreams: true,
 		},
 		{

@@ -16,9 +16,10 @@ from leadline.v1 import drive_pb2 as leadline_dot_v1_dot_drive__pb2
 from leadline.v1 import measurement_pb2 as leadline_dot_v1_dot_measurement__pb2
 from leadline.v1 import posterior_pb2 as leadline_dot_v1_dot_posterior__pb2
 from leadline.v1 import reason_pb2 as leadline_dot_v1_dot_reason__pb2
+from leadline.v1 import traffic_pb2 as leadline_dot_v1_dot_traffic__pb2
 
 
-DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x16leadline/v1/feed.proto\x12\x0bleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/drive.proto\x1a\x1dleadline/v1/measurement.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x18leadline/v1/reason.proto\"\x93\x01\n\x0b\x46\x65\x65\x64Request\x12\'\n\x04open\x18\x01 \x01(\x0b\x32\x11.leadline.v1.OpenH\x00R\x04open\x12*\n\x05\x62\x61tch\x18\x02 \x01(\x0b\x32\x12.leadline.v1.BatchH\x00R\x05\x62\x61tch\x12$\n\x03\x65nd\x18\x03 \x01(\x0b\x32\x10.leadline.v1.EndH\x00R\x03\x65ndB\t\n\x07message\"\xb6\x01\n\x04Open\x12\x30\n\x06header\x18\x01 \x01(\x0b\x32\x18.leadline.v1.DriveHeaderR\x06header\x12\x14\n\x05\x64rive\x18\x02 \x01(\tR\x05\x64rive\x12\x18\n\x07replace\x18\x03 \x01(\x08R\x07replace\x12(\n\x05reply\x18\x04 \x01(\x0e\x32\x12.leadline.v1.ReplyR\x05reply\x12\"\n\x0c\x61\x63knowledged\x18\x05 \x01(\x04R\x0c\x61\x63knowledged\"g\n\x05\x42\x61tch\x12\x1a\n\x08sequence\x18\x01 \x01(\x04R\x08sequence\x12\x42\n\x0cmeasurements\x18\x02 \x03(\x0b\x32\x1e.leadline.v1.SensorMeasurementR\x0cmeasurements\"\x05\n\x03\x45nd\"\x99\x02\n\x0c\x46\x65\x65\x64Response\x12-\n\x06opened\x18\x01 \x01(\x0b\x32\x13.leadline.v1.OpenedH\x00R\x06opened\x12\x30\n\x07receipt\x18\x02 \x01(\x0b\x32\x14.leadline.v1.ReceiptH\x00R\x07receipt\x12\x36\n\tposterior\x18\x03 \x01(\x0b\x32\x16.leadline.v1.PosteriorH\x00R\tposterior\x12-\n\x06\x63losed\x18\x04 \x01(\x0b\x32\x13.leadline.v1.ClosedH\x00R\x06\x63losed\x12\x36\n\twithdrawn\x18\x05 \x01(\x0b\x32\x16.leadline.v1.WithdrawnH\x00R\twithdrawnB\t\n\x07message\"\xb0\x01\n\x06Opened\x12\x1a\n\x08sequence\x18\x01 \x01(\x04R\x08sequence\x12\'\n\x0fmap_fingerprint\x18\x02 \x01(\tR\x0emapFingerprint\x12\x1b\n\tmax_batch\x18\x03 \x01(\rR\x08maxBatch\x12*\n\x11max_message_bytes\x18\x04 \x01(\rR\x0fmaxMessageBytes\x12\x18\n\x07version\x18\x05 \x01(\tR\x07version\"\x8d\x01\n\x07Receipt\x12\x1a\n\x08sequence\x18\x01 \x01(\x04R\x08sequence\x12\x1a\n\x08\x61\x63\x63\x65pted\x18\x02 \x01(\rR\x08\x61\x63\x63\x65pted\x12\x30\n\x08refusals\x18\x03 \x03(\x0b\x32\x14.leadline.v1.RefusalR\x08refusals\x12\x18\n\x07\x64urable\x18\x04 \x01(\x08R\x07\x64urable\"\xc4\x01\n\x07Refusal\x12\x14\n\x05index\x18\x01 \x01(\rR\x05index\x12.\n\x04time\x18\x02 \x01(\x0b\x32\x1a.google.protobuf.TimestampR\x04time\x12\x16\n\x06sensor\x18\x03 \x01(\tR\x06sensor\x12\x16\n\x06number\x18\x04 \x01(\x04R\x06number\x12+\n\x06reason\x18\x05 \x01(\x0e\x32\x13.leadline.v1.ReasonR\x06reason\x12\x16\n\x06\x64\x65tail\x18\x06 \x01(\tR\x06\x64\x65tail\"\xd9\x01\n\x06\x43losed\x12\x34\n\tposterior\x18\x01 \x01(\x0b\x32\x16.leadline.v1.PosteriorR\tposterior\x12\x1e\n\nposteriors\x18\x02 \x01(\x04R\nposteriors\x12)\n\x10posterior_sha256\x18\x03 \x01(\tR\x0fposteriorSha256\x12\x1a\n\x08\x61\x63\x63\x65pted\x18\x04 \x01(\x04R\x08\x61\x63\x63\x65pted\x12\x18\n\x07refused\x18\x05 \x01(\x04R\x07refused\x12\x18\n\x07version\x18\x06 \x01(\tR\x07version*Q\n\x05Reply\x12\x15\n\x11REPLY_UNSPECIFIED\x10\x00\x12\x10\n\x0cREPLY_LATEST\x10\x01\x12\x0f\n\x0bREPLY_EVERY\x10\x02\x12\x0e\n\nREPLY_NONE\x10\x03\x42\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
+DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x16leadline/v1/feed.proto\x12\x0bleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/drive.proto\x1a\x1dleadline/v1/measurement.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x18leadline/v1/reason.proto\x1a\x19leadline/v1/traffic.proto\"\x93\x01\n\x0b\x46\x65\x65\x64Request\x12\'\n\x04open\x18\x01 \x01(\x0b\x32\x11.leadline.v1.OpenH\x00R\x04open\x12*\n\x05\x62\x61tch\x18\x02 \x01(\x0b\x32\x12.leadline.v1.BatchH\x00R\x05\x62\x61tch\x12$\n\x03\x65nd\x18\x03 \x01(\x0b\x32\x10.leadline.v1.EndH\x00R\x03\x65ndB\t\n\x07message\"\xb6\x01\n\x04Open\x12\x30\n\x06header\x18\x01 \x01(\x0b\x32\x18.leadline.v1.DriveHeaderR\x06header\x12\x14\n\x05\x64rive\x18\x02 \x01(\tR\x05\x64rive\x12\x18\n\x07replace\x18\x03 \x01(\x08R\x07replace\x12(\n\x05reply\x18\x04 \x01(\x0e\x32\x12.leadline.v1.ReplyR\x05reply\x12\"\n\x0c\x61\x63knowledged\x18\x05 \x01(\x04R\x0c\x61\x63knowledged\"g\n\x05\x42\x61tch\x12\x1a\n\x08sequence\x18\x01 \x01(\x04R\x08sequence\x12\x42\n\x0cmeasurements\x18\x02 \x03(\x0b\x32\x1e.leadline.v1.SensorMeasurementR\x0cmeasurements\"\x05\n\x03\x45nd\"\x99\x02\n\x0c\x46\x65\x65\x64Response\x12-\n\x06opened\x18\x01 \x01(\x0b\x32\x13.leadline.v1.OpenedH\x00R\x06opened\x12\x30\n\x07receipt\x18\x02 \x01(\x0b\x32\x14.leadline.v1.ReceiptH\x00R\x07receipt\x12\x36\n\tposterior\x18\x03 \x01(\x0b\x32\x16.leadline.v1.PosteriorH\x00R\tposterior\x12-\n\x06\x63losed\x18\x04 \x01(\x0b\x32\x13.leadline.v1.ClosedH\x00R\x06\x63losed\x12\x36\n\twithdrawn\x18\x05 \x01(\x0b\x32\x16.leadline.v1.WithdrawnH\x00R\twithdrawnB\t\n\x07message\"\xb0\x01\n\x06Opened\x12\x1a\n\x08sequence\x18\x01 \x01(\x04R\x08sequence\x12\'\n\x0fmap_fingerprint\x18\x02 \x01(\tR\x0emapFingerprint\x12\x1b\n\tmax_batch\x18\x03 \x01(\rR\x08maxBatch\x12*\n\x11max_message_bytes\x18\x04 \x01(\rR\x0fmaxMessageBytes\x12\x18\n\x07version\x18\x05 \x01(\tR\x07version\"\x8d\x01\n\x07Receipt\x12\x1a\n\x08sequence\x18\x01 \x01(\x04R\x08sequence\x12\x1a\n\x08\x61\x63\x63\x65pted\x18\x02 \x01(\rR\x08\x61\x63\x63\x65pted\x12\x30\n\x08refusals\x18\x03 \x03(\x0b\x32\x14.leadline.v1.RefusalR\x08refusals\x12\x18\n\x07\x64urable\x18\x04 \x01(\x08R\x07\x64urable\"\xc4\x01\n\x07Refusal\x12\x14\n\x05index\x18\x01 \x01(\rR\x05index\x12.\n\x04time\x18\x02 \x01(\x0b\x32\x1a.google.protobuf.TimestampR\x04time\x12\x16\n\x06sensor\x18\x03 \x01(\tR\x06sensor\x12\x16\n\x06number\x18\x04 \x01(\x04R\x06number\x12+\n\x06reason\x18\x05 \x01(\x0e\x32\x13.leadline.v1.ReasonR\x06reason\x12\x16\n\x06\x64\x65tail\x18\x06 \x01(\tR\x06\x64\x65tail\"\x90\x02\n\x06\x43losed\x12\x34\n\tposterior\x18\x01 \x01(\x0b\x32\x16.leadline.v1.PosteriorR\tposterior\x12\x1e\n\nposteriors\x18\x02 \x01(\x04R\nposteriors\x12)\n\x10posterior_sha256\x18\x03 \x01(\tR\x0fposteriorSha256\x12\x1a\n\x08\x61\x63\x63\x65pted\x18\x04 \x01(\x04R\x08\x61\x63\x63\x65pted\x12\x18\n\x07refused\x18\x05 \x01(\x04R\x07refused\x12\x18\n\x07version\x18\x06 \x01(\tR\x07version\x12\x35\n\x07traffic\x18\x07 \x01(\x0b\x32\x1b.leadline.v1.TrafficPictureR\x07traffic*Q\n\x05Reply\x12\x15\n\x11REPLY_UNSPECIFIED\x10\x00\x12\x10\n\x0cREPLY_LATEST\x10\x01\x12\x0f\n\x0bREPLY_EVERY\x10\x02\x12\x0e\n\nREPLY_NONE\x10\x03\x42\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
 
 _builder.BuildMessageAndEnumDescriptors(DESCRIPTOR, globals())
 _builder.BuildTopDescriptorsAndMessages(DESCRIPTOR, 'leadline.v1.feed_pb2', globals())
@@ -26,24 +27,24 @@ if _descriptor._USE_C_DESCRIPTORS == False:
 
   DESCRIPTOR._options = None
   DESCRIPTOR._serialized_options = b'Z%leadline/proto/leadline/v1;leadlinev1'
-  _REPLY._serialized_start=1656
-  _REPLY._serialized_end=1737
-  _FEEDREQUEST._serialized_start=184
-  _FEEDREQUEST._serialized_end=331
-  _OPEN._serialized_start=334
-  _OPEN._serialized_end=516
-  _BATCH._serialized_start=518
-  _BATCH._serialized_end=621
-  _END._serialized_start=623
-  _END._serialized_end=628
-  _FEEDRESPONSE._serialized_start=631
-  _FEEDRESPONSE._serialized_end=912
-  _OPENED._serialized_start=915
-  _OPENED._serialized_end=1091
-  _RECEIPT._serialized_start=1094
-  _RECEIPT._serialized_end=1235
-  _REFUSAL._serialized_start=1238
-  _REFUSAL._serialized_end=1434
-  _CLOSED._serialized_start=1437
-  _CLOSED._serialized_end=1654
+  _REPLY._serialized_start=1738
+  _REPLY._serialized_end=1819
+  _FEEDREQUEST._serialized_start=211
+  _FEEDREQUEST._serialized_end=358
+  _OPEN._serialized_start=361
+  _OPEN._serialized_end=543
+  _BATCH._serialized_start=545
+  _BATCH._serialized_end=648
+  _END._serialized_start=650
+  _END._serialized_end=655
+  _FEEDRESPONSE._serialized_start=658
+  _FEEDRESPONSE._serialized_end=939
+  _OPENED._serialized_start=942
+  _OPENED._serialized_end=1118
+  _RECEIPT._serialized_start=1121
+  _RECEIPT._serialized_end=1262
+  _REFUSAL._serialized_start=1265
+  _REFUSAL._serialized_end=1461
+  _CLOSED._serialized_start=1464
+  _CLOSED._serialized_end=1736
 # @@protoc_insertion_point(module_scope)

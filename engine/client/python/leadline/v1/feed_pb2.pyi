@@ -3,6 +3,7 @@ from leadline.v1 import drive_pb2 as _drive_pb2
 from leadline.v1 import measurement_pb2 as _measurement_pb2
 from leadline.v1 import posterior_pb2 as _posterior_pb2
 from leadline.v1 import reason_pb2 as _reason_pb2
+from leadline.v1 import traffic_pb2 as _traffic_pb2
 from google.protobuf.internal import containers as _containers
 from google.protobuf.internal import enum_type_wrapper as _enum_type_wrapper
 from google.protobuf import descriptor as _descriptor
@@ -24,20 +25,22 @@ class Batch(_message.Message):
     def __init__(self, sequence: _Optional[int] = ..., measurements: _Optional[_Iterable[_Union[_measurement_pb2.SensorMeasurement, _Mapping]]] = ...) -> None: ...
 
 class Closed(_message.Message):
-    __slots__ = ["accepted", "posterior", "posterior_sha256", "posteriors", "refused", "version"]
+    __slots__ = ["accepted", "posterior", "posterior_sha256", "posteriors", "refused", "traffic", "version"]
     ACCEPTED_FIELD_NUMBER: _ClassVar[int]
     POSTERIORS_FIELD_NUMBER: _ClassVar[int]
     POSTERIOR_FIELD_NUMBER: _ClassVar[int]
     POSTERIOR_SHA256_FIELD_NUMBER: _ClassVar[int]
     REFUSED_FIELD_NUMBER: _ClassVar[int]
+    TRAFFIC_FIELD_NUMBER: _ClassVar[int]
     VERSION_FIELD_NUMBER: _ClassVar[int]
     accepted: int
     posterior: _posterior_pb2.Posterior
     posterior_sha256: str
     posteriors: int
     refused: int
+    traffic: _traffic_pb2.TrafficPicture
     version: str
-    def __init__(self, posterior: _Optional[_Union[_posterior_pb2.Posterior, _Mapping]] = ..., posteriors: _Optional[int] = ..., posterior_sha256: _Optional[str] = ..., accepted: _Optional[int] = ..., refused: _Optional[int] = ..., version: _Optional[str] = ...) -> None: ...
+    def __init__(self, posterior: _Optional[_Union[_posterior_pb2.Posterior, _Mapping]] = ..., posteriors: _Optional[int] = ..., posterior_sha256: _Optional[str] = ..., accepted: _Optional[int] = ..., refused: _Optional[int] = ..., version: _Optional[str] = ..., traffic: _Optional[_Union[_traffic_pb2.TrafficPicture, _Mapping]] = ...) -> None: ...
 
 class End(_message.Message):
     __slots__ = []

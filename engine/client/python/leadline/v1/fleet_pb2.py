@@ -16,7 +16,7 @@ from leadline.v1 import feed_pb2 as leadline_dot_v1_dot_feed__pb2
 from leadline.v1 import posterior_pb2 as leadline_dot_v1_dot_posterior__pb2
 
 
-DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x17leadline/v1/fleet.proto\x12\x0bleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x16leadline/v1/feed.proto\x1a\x1bleadline/v1/posterior.proto\"c\n\x13ListVehiclesRequest\x12\x10\n\x03map\x18\x01 \x01(\tR\x03map\x12\x1b\n\tpage_size\x18\x02 \x01(\rR\x08pageSize\x12\x1d\n\npage_token\x18\x03 \x01(\tR\tpageToken\"p\n\x14ListVehiclesResponse\x12\x30\n\x08vehicles\x18\x01 \x03(\x0b\x32\x14.leadline.v1.VehicleR\x08vehicles\x12&\n\x0fnext_page_token\x18\x02 \x01(\tR\rnextPageToken\"\x9d\x03\n\x07Vehicle\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\x12\x14\n\x05\x64rive\x18\x02 \x01(\tR\x05\x64rive\x12\x10\n\x03map\x18\x03 \x01(\tR\x03map\x12\'\n\x0fmap_fingerprint\x18\x04 \x01(\tR\x0emapFingerprint\x12\x14\n\x05suite\x18\x05 \x01(\tR\x05suite\x12+\n\x06status\x18\x06 \x01(\x0e\x32\x13.leadline.v1.StatusR\x06status\x12.\n\x04time\x18\x07 \x01(\x0b\x32\x1a.google.protobuf.TimestampR\x04time\x12\x13\n\x05\x61ge_s\x18\x08 \x01(\x01R\x04\x61geS\x12\x37\n\topened_at\x18\t \x01(\x0b\x32\x1a.google.protobuf.TimestampR\x08openedAt\x12\x1c\n\tconnected\x18\n \x01(\x08R\tconnected\x12\x14\n\x05\x65nded\x18\x0b \x01(\x08R\x05\x65nded\x12\x32\n\x15newer_map_fingerprint\x18\x0c \x01(\tR\x13newerMapFingerprint\"A\n\x0f\x45ndDriveRequest\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\x12\x14\n\x05\x64rive\x18\x02 \x01(\tR\x05\x64rive\"?\n\x10\x45ndDriveResponse\x12+\n\x06\x63losed\x18\x01 \x01(\x0b\x32\x13.leadline.v1.ClosedR\x06\x63losed\"/\n\x13\x45raseVehicleRequest\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\"H\n\x14\x45raseVehicleResponse\x12\x16\n\x06\x64rives\x18\x01 \x01(\rR\x06\x64rives\x12\x18\n\x07records\x18\x02 \x01(\x04R\x07records\"\x18\n\x16\x44\x65scribeJournalRequest\"\x89\x04\n\x17\x44\x65scribeJournalResponse\x12\x14\n\x05where\x18\x01 \x01(\tR\x05where\x12\x14\n\x05\x65poch\x18\x02 \x01(\x04R\x05\x65poch\x12\x1e\n\npartitions\x18\x03 \x01(\rR\npartitions\x12\x14\n\x05\x62ytes\x18\x04 \x01(\x04R\x05\x62ytes\x12\x1d\n\nmost_bytes\x18\x05 \x01(\x04R\tmostBytes\x12\"\n\nfree_bytes\x18\x06 \x01(\x04H\x00R\tfreeBytes\x88\x01\x01\x12$\n\x0bleave_bytes\x18\x07 \x01(\x04H\x01R\nleaveBytes\x88\x01\x01\x12\x18\n\x07records\x18\x08 \x01(\x04R\x07records\x12\x18\n\x07refused\x18\t \x01(\x04R\x07refused\x12\x18\n\x07waiting\x18\n \x01(\x04R\x07waiting\x12\x32\n\x06oldest\x18\x0b \x01(\x0b\x32\x1a.google.protobuf.TimestampR\x06oldest\x12\x1c\n\nkeep_for_s\x18\x0c \x01(\x01R\x08keepForS\x12\x18\n\x07\x66\x61ilure\x18\r \x01(\tR\x07\x66\x61ilure\x12%\n\x0eown_partitions\x18\x0e \x01(\rR\rownPartitions\x12#\n\rother_servers\x18\x0f \x03(\tR\x0cotherServersB\r\n\x0b_free_bytesB\x0e\n\x0c_leave_bytesB\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
+DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x17leadline/v1/fleet.proto\x12\x0bleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x16leadline/v1/feed.proto\x1a\x1bleadline/v1/posterior.proto\"}\n\x13ListVehiclesRequest\x12\x10\n\x03map\x18\x01 \x01(\tR\x03map\x12\x1b\n\tpage_size\x18\x02 \x01(\rR\x08pageSize\x12\x1d\n\npage_token\x18\x03 \x01(\tR\tpageToken\x12\x18\n\x07traffic\x18\x04 \x01(\x08R\x07traffic\"p\n\x14ListVehiclesResponse\x12\x30\n\x08vehicles\x18\x01 \x03(\x0b\x32\x14.leadline.v1.VehicleR\x08vehicles\x12&\n\x0fnext_page_token\x18\x02 \x01(\tR\rnextPageToken\"\x9d\x03\n\x07Vehicle\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\x12\x14\n\x05\x64rive\x18\x02 \x01(\tR\x05\x64rive\x12\x10\n\x03map\x18\x03 \x01(\tR\x03map\x12\'\n\x0fmap_fingerprint\x18\x04 \x01(\tR\x0emapFingerprint\x12\x14\n\x05suite\x18\x05 \x01(\tR\x05suite\x12+\n\x06status\x18\x06 \x01(\x0e\x32\x13.leadline.v1.StatusR\x06status\x12.\n\x04time\x18\x07 \x01(\x0b\x32\x1a.google.protobuf.TimestampR\x04time\x12\x13\n\x05\x61ge_s\x18\x08 \x01(\x01R\x04\x61geS\x12\x37\n\topened_at\x18\t \x01(\x0b\x32\x1a.google.protobuf.TimestampR\x08openedAt\x12\x1c\n\tconnected\x18\n \x01(\x08R\tconnected\x12\x14\n\x05\x65nded\x18\x0b \x01(\x08R\x05\x65nded\x12\x32\n\x15newer_map_fingerprint\x18\x0c \x01(\tR\x13newerMapFingerprint\"A\n\x0f\x45ndDriveRequest\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\x12\x14\n\x05\x64rive\x18\x02 \x01(\tR\x05\x64rive\"?\n\x10\x45ndDriveResponse\x12+\n\x06\x63losed\x18\x01 \x01(\x0b\x32\x13.leadline.v1.ClosedR\x06\x63losed\"/\n\x13\x45raseVehicleRequest\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\"H\n\x14\x45raseVehicleResponse\x12\x16\n\x06\x64rives\x18\x01 \x01(\rR\x06\x64rives\x12\x18\n\x07records\x18\x02 \x01(\x04R\x07records\"\x18\n\x16\x44\x65scribeJournalRequest\"\x89\x04\n\x17\x44\x65scribeJournalResponse\x12\x14\n\x05where\x18\x01 \x01(\tR\x05where\x12\x14\n\x05\x65poch\x18\x02 \x01(\x04R\x05\x65poch\x12\x1e\n\npartitions\x18\x03 \x01(\rR\npartitions\x12\x14\n\x05\x62ytes\x18\x04 \x01(\x04R\x05\x62ytes\x12\x1d\n\nmost_bytes\x18\x05 \x01(\x04R\tmostBytes\x12\"\n\nfree_bytes\x18\x06 \x01(\x04H\x00R\tfreeBytes\x88\x01\x01\x12$\n\x0bleave_bytes\x18\x07 \x01(\x04H\x01R\nleaveBytes\x88\x01\x01\x12\x18\n\x07records\x18\x08 \x01(\x04R\x07records\x12\x18\n\x07refused\x18\t \x01(\x04R\x07refused\x12\x18\n\x07waiting\x18\n \x01(\x04R\x07waiting\x12\x32\n\x06oldest\x18\x0b \x01(\x0b\x32\x1a.google.protobuf.TimestampR\x06oldest\x12\x1c\n\nkeep_for_s\x18\x0c \x01(\x01R\x08keepForS\x12\x18\n\x07\x66\x61ilure\x18\r \x01(\tR\x07\x66\x61ilure\x12%\n\x0eown_partitions\x18\x0e \x01(\rR\rownPartitions\x12#\n\rother_servers\x18\x0f \x03(\tR\x0cotherServersB\r\n\x0b_free_bytesB\x0e\n\x0c_leave_bytesB\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
 
 _builder.BuildMessageAndEnumDescriptors(DESCRIPTOR, globals())
 _builder.BuildTopDescriptorsAndMessages(DESCRIPTOR, 'leadline.v1.fleet_pb2', globals())
@@ -25,21 +25,21 @@ if _descriptor._USE_C_DESCRIPTORS == False:
   DESCRIPTOR._options = None
   DESCRIPTOR._serialized_options = b'Z%leadline/proto/leadline/v1;leadlinev1'
   _LISTVEHICLESREQUEST._serialized_start=126
-  _LISTVEHICLESREQUEST._serialized_end=225
-  _LISTVEHICLESRESPONSE._serialized_start=227
-  _LISTVEHICLESRESPONSE._serialized_end=339
-  _VEHICLE._serialized_start=342
-  _VEHICLE._serialized_end=755
-  _ENDDRIVEREQUEST._serialized_start=757
-  _ENDDRIVEREQUEST._serialized_end=822
-  _ENDDRIVERESPONSE._serialized_start=824
-  _ENDDRIVERESPONSE._serialized_end=887
-  _ERASEVEHICLEREQUEST._serialized_start=889
-  _ERASEVEHICLEREQUEST._serialized_end=936
-  _ERASEVEHICLERESPONSE._serialized_start=938
-  _ERASEVEHICLERESPONSE._serialized_end=1010
-  _DESCRIBEJOURNALREQUEST._serialized_start=1012
-  _DESCRIBEJOURNALREQUEST._serialized_end=1036
-  _DESCRIBEJOURNALRESPONSE._serialized_start=1039
-  _DESCRIBEJOURNALRESPONSE._serialized_end=1560
+  _LISTVEHICLESREQUEST._serialized_end=251
+  _LISTVEHICLESRESPONSE._serialized_start=253
+  _LISTVEHICLESRESPONSE._serialized_end=365
+  _VEHICLE._serialized_start=368
+  _VEHICLE._serialized_end=781
+  _ENDDRIVEREQUEST._serialized_start=783
+  _ENDDRIVEREQUEST._serialized_end=848
+  _ENDDRIVERESPONSE._serialized_start=850
+  _ENDDRIVERESPONSE._serialized_end=913
+  _ERASEVEHICLEREQUEST._serialized_start=915
+  _ERASEVEHICLEREQUEST._serialized_end=962
+  _ERASEVEHICLERESPONSE._serialized_start=964
+  _ERASEVEHICLERESPONSE._serialized_end=1036
+  _DESCRIBEJOURNALREQUEST._serialized_start=1038
+  _DESCRIBEJOURNALREQUEST._serialized_end=1062
+  _DESCRIBEJOURNALRESPONSE._serialized_start=1065
+  _DESCRIBEJOURNALRESPONSE._serialized_end=1586
 # @@protoc_insertion_point(module_scope)

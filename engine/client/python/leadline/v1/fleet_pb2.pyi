@@ -75,14 +75,16 @@ class EraseVehicleResponse(_message.Message):
     def __init__(self, drives: _Optional[int] = ..., records: _Optional[int] = ...) -> None: ...
 
 class ListVehiclesRequest(_message.Message):
-    __slots__ = ["map", "page_size", "page_token"]
+    __slots__ = ["map", "page_size", "page_token", "traffic"]
     MAP_FIELD_NUMBER: _ClassVar[int]
     PAGE_SIZE_FIELD_NUMBER: _ClassVar[int]
     PAGE_TOKEN_FIELD_NUMBER: _ClassVar[int]
+    TRAFFIC_FIELD_NUMBER: _ClassVar[int]
     map: str
     page_size: int
     page_token: str
-    def __init__(self, map: _Optional[str] = ..., page_size: _Optional[int] = ..., page_token: _Optional[str] = ...) -> None: ...
+    traffic: bool
+    def __init__(self, map: _Optional[str] = ..., page_size: _Optional[int] = ..., page_token: _Optional[str] = ..., traffic: bool = ...) -> None: ...
 
 class ListVehiclesResponse(_message.Message):
     __slots__ = ["next_page_token", "vehicles"]

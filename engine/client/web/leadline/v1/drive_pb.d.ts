@@ -108,6 +108,15 @@ export declare type DriveHeader = Message<"leadline.v1.DriveHeader"> & {
    * @generated from field: leadline.v1.Start start = 4;
    */
   start?: Start | undefined;
+
+  /**
+   * It is no vehicle's drive but what posts hear of vehicles without a name, on
+   * the road that the suite describes: see TrafficPicture. vehicle is then the
+   * road's name; map and start are left out.
+   *
+   * @generated from field: bool traffic = 5;
+   */
+  traffic: boolean;
 };
 
 /**

@@ -9,6 +9,7 @@ import type { SensorMeasurement } from "./measurement_pb.js";
 import type { Posterior, Withdrawn } from "./posterior_pb.js";
 import type { Timestamp } from "@bufbuild/protobuf/wkt";
 import type { Reason } from "./reason_pb.js";
+import type { TrafficPicture } from "./traffic_pb.js";
 
 /**
  * Describes the file leadline/v1/feed.proto.
@@ -62,7 +63,8 @@ export declare const FeedRequestSchema: GenMessage<FeedRequest>;
  */
 export declare type Open = Message<"leadline.v1.Open"> & {
   /**
-   * Vehicle, map, suite and start. The map is required here.
+   * Vehicle, map, suite and start. The map is required here; of traffic the suite
+   * is.
    *
    * @generated from field: leadline.v1.DriveHeader header = 1;
    */
@@ -381,6 +383,14 @@ export declare type Closed = Message<"leadline.v1.Closed"> & {
    * @generated from field: string version = 6;
    */
   version: string;
+
+  /**
+   * Of a road's traffic: the last picture, with vehicles that exist with 1/2 or
+   * more. It has no posteriors.
+   *
+   * @generated from field: leadline.v1.TrafficPicture traffic = 7;
+   */
+  traffic?: TrafficPicture | undefined;
 };
 
 /**
@@ -417,7 +427,7 @@ export enum Reply {
   EVERY = 2,
 
   /**
-   * None; ask for them with Where.
+   * None; ask for them with Where, or of a road with Traffic: it has none.
    *
    * @generated from enum value: REPLY_NONE = 3;
    */

@@ -39,6 +39,14 @@ export declare type ListVehiclesRequest = Message<"leadline.v1.ListVehiclesReque
    * @generated from field: string page_token = 3;
    */
   pageToken: string;
+
+  /**
+   * Roads whose traffic is followed, in place of vehicles. They have neither map
+   * nor status; time is that of the last scan.
+   *
+   * @generated from field: bool traffic = 4;
+   */
+  traffic: boolean;
 };
 
 /**

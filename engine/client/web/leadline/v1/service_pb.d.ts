@@ -6,6 +6,7 @@ import type { GenFile, GenService } from "@bufbuild/protobuf/codegenv2";
 import type { FeedRequestSchema, FeedResponseSchema } from "./feed_pb.js";
 import type { WhereRequestSchema, WhereResponseSchema } from "./where_pb.js";
 import type { FollowRequestSchema, FollowResponseSchema } from "./follow_pb.js";
+import type { FollowTrafficRequestSchema, FollowTrafficResponseSchema, TrafficRequestSchema, TrafficResponseSchema } from "./traffic_pb.js";
 import type { AddSightingRequestSchema, AddSightingResponseSchema, TrailRequestSchema, TrailResponseSchema } from "./trail_pb.js";
 import type { SeeAlarmRequestSchema, SeeAlarmResponseSchema } from "./alarm_pb.js";
 import type { DescribeJournalRequestSchema, DescribeJournalResponseSchema, EndDriveRequestSchema, EndDriveResponseSchema, EraseVehicleRequestSchema, EraseVehicleResponseSchema, ListVehiclesRequestSchema, ListVehiclesResponseSchema } from "./fleet_pb.js";
@@ -64,6 +65,27 @@ export declare const PositionService: GenService<{
     methodKind: "server_streaming";
     input: typeof FollowRequestSchema;
     output: typeof FollowResponseSchema;
+  },
+  /**
+   * Traffic says what is known of the vehicles on a road that posts listen to.
+   * The posts' bearings come by Feed, in a drive whose header says traffic.
+   *
+   * @generated from rpc leadline.v1.PositionService.Traffic
+   */
+  traffic: {
+    methodKind: "unary";
+    input: typeof TrafficRequestSchema;
+    output: typeof TrafficResponseSchema;
+  },
+  /**
+   * FollowTraffic tells of them as they move on.
+   *
+   * @generated from rpc leadline.v1.PositionService.FollowTraffic
+   */
+  followTraffic: {
+    methodKind: "server_streaming";
+    input: typeof FollowTrafficRequestSchema;
+    output: typeof FollowTrafficResponseSchema;
   },
   /**
    * Trail says what a vehicle's drive was like so far.
