@@ -195,7 +195,7 @@ func (s *Server) FollowTraffic(req *leadlinev1.FollowTrafficRequest, stream grpc
 			return err
 		}
 		pause := time.NewTimer(interval)
-		var over <-chan time.Time = pause.C
+		over := pause.C
 		for over != nil || news != nil {
 			select {
 			case <-over:
