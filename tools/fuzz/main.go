@@ -1,5 +1,5 @@
-// Command fuzz runs every fuzz target of the module live, one after the other,
-// with a share each of one total time. It fails when a target finds something
+// Command fuzz runs every fuzz target of the module live, as many at once as there
+// are processors, with a share each of one total time. It fails when a target finds something
 // or has an empty corpus. A finding is left under testdata/fuzz of its package,
 // where the ordinary tests run it from then on.
 //
@@ -22,6 +22,7 @@ import (
 	"slices"
 	"strings"
 	"sync"
+	"sync/atomic"
 	"time"
 )
 
@@ -74,17 +75,32 @@ func run(total time.Duration, patterns []string) error {
 	}
 	share := max(total/time.Duration(len(targets)), leastShare)
 	fmt.Printf("fuzz: %d targets, %.1f s each\n", len(targets), share.Seconds())
-	bad := 0
-	for _, t := range targets {
+	var bad atomic.Int64
+	together(len(targets), func(i int) {
+		t := targets[i]
 		if err := live(t, share, filepath.Join(strings.TrimSpace(cache), "fuzz", t.pkg)); err != nil {
-			bad++
+			bad.Add(1)
 			fmt.Printf("fuzz: %s %s: %v\n", t.pkg, t.name, err)
 		}
-	}
-	if bad > 0 {
-		return fmt.Errorf("%d of %d targets failed", bad, len(targets))
+	})
+	if n := bad.Load(); n > 0 {
+		return fmt.Errorf("%d of %d targets failed", n, len(targets))
 	}
 	return nil
+}
+
+// together calls do for 0 to n-1, as many at once as there are processors.
+func together(n int, do func(i int)) {
+	free := make(chan struct{}, runtime.GOMAXPROCS(0))
+	var all sync.WaitGroup
+	for i := range n {
+		free <- struct{}{}
+		all.Go(func() {
+			do(i)
+			<-free
+		})
+	}
+	all.Wait()
 }
 
 // declares finds the packages worth an instrumented build; the test binary
@@ -115,16 +131,7 @@ func find(patterns []string, work string) ([]target, error) {
 	}
 	// Linking keeps one processor busy: so several at once.
 	in, errs := make([][]target, len(with)), make([]error, len(with))
-	free := make(chan struct{}, runtime.GOMAXPROCS(0))
-	var builds sync.WaitGroup
-	for i, of := range with {
-		builds.Go(func() {
-			free <- struct{}{}
-			in[i], errs[i] = targetsOf(of[0], of[1], work)
-			<-free
-		})
-	}
-	builds.Wait()
+	together(len(with), func(i int) { in[i], errs[i] = targetsOf(with[i][0], with[i][1], work) })
 	return slices.Concat(in...), errors.Join(errs...)
 }
 
@@ -163,7 +170,7 @@ func live(t target, share time.Duration, cache string) error {
 
 	ctx, cancel := context.WithTimeout(context.Background(), share+graceTime)
 	defer cancel()
-	cmd := exec.CommandContext(ctx, t.binary, "-test.run=^$", "-test.fuzz="+exact,
+	cmd := exec.CommandContext(ctx, t.binary, "-test.run=^$", "-test.fuzz="+exact, "-test.parallel=1",
 		"-test.fuzztime="+share.String(), "-test.fuzzminimizetime="+shrinking, "-test.fuzzcachedir="+cache)
 	cmd.Dir = t.dir
 	var said bytes.Buffer
