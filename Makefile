@@ -9,7 +9,8 @@ VECTORS   = $(GO) run -modfile=tools/avo.mod tools/vectors/main.go -pkg kernel
 LINTER    = $(GO) tool -modfile=tools/lint.mod golangci-lint
 PROTOS    = $(wildcard proto/leadline/v1/*.proto)
 VERSION  ?= $(shell git describe --tags --always --dirty 2>/dev/null || echo unknown)
-FUZZ_TIME ?= 60s
+FUZZ_TIME ?= 30s
+FUZZ_PART ?= 0/1
 
 # The packages that start goroutines; a test in engine/ compares the list with
 # the code. A tree may be named before it exists.
@@ -34,12 +35,12 @@ test:
 race:
 	CGO_ENABLED=1 $(GO) test -race -short -vet=off -p 3 $(foreach p,$(RACE_PACKAGES),$(if $(wildcard $(p:/...=)/),$(p)))
 
-# fuzz fuzzes every target live; they share FUZZ_TIME.
+# fuzz fuzzes every target live, or those of a part of the packages; they share FUZZ_TIME.
 fuzz:
-	$(GO) run ./tools/fuzz -total $(FUZZ_TIME)
+	$(GO) run ./tools/fuzz -total $(FUZZ_TIME) -part $(FUZZ_PART)
 
-# credibility draws the table of claims about posteriors, in at most an hour, and
-# writes build/credibility.json; a run that was stopped goes on.
+# credibility draws the table of claims about posteriors for 55 minutes and writes
+# build/credibility.json; called again, it goes on. The whole takes some hours.
 credibility:
 	$(GO) run ./fixtures/credibility/run
 

@@ -2,23 +2,11 @@ package client
 
 import (
 	"context"
-	"errors"
-	"io"
-	"time"
 
 	"google.golang.org/grpc"
-	"google.golang.org/grpc/codes"
-	"google.golang.org/grpc/status"
 	"google.golang.org/protobuf/proto"
 
 	leadlinev1 "leadline/proto/leadline/v1"
-)
-
-// Pauses before a broken stream is opened again: doubled each time, until an
-// update comes.
-const (
-	firstPause = 100 * time.Millisecond
-	lastPause  = 10 * time.Second
 )
 
 // Following says how Follow goes about it.
@@ -38,69 +26,35 @@ type Following struct {
 // is told twice; only the first one must come about.
 func Follow(ctx context.Context, conn grpc.ClientConnInterface, f Following) error {
 	req := proto.CloneOf(f.Request)
-	pause, begun := firstPause, false
-	for {
-		opened := time.Now()
-		err := followOnce(ctx, conn, req, func(m *leadlinev1.FollowResponse) error {
-			pause, begun = firstPause, true
-			req.ResumeToken = m.GetResumeToken()
-			return f.OnUpdate(m)
-		}, func() { begun = true })
-		var own *callback
-		why, _ := WhyOf(err)
-		switch anew := req.GetResumeToken() != "" && why.Reason == leadlinev1.Reason_REASON_BAD_TOKEN; {
-		case errors.As(err, &own):
-			return own.error
-		case ctx.Err() != nil:
-			return ctx.Err()
-		case anew:
-			req.ResumeToken = ""
-			if f.OnBreak != nil {
-				f.OnBreak(err, true)
-			}
-			continue
-		case why.Reason == leadlinev1.Reason_REASON_IDENTITY_EXPIRED && time.Since(opened) > time.Second:
-			// The token was good when the stream began: there may be another.
-		case !begun || status.Code(err) != codes.Unavailable:
-			return err
-		}
+	broke := func(err error, anew bool) {
 		if f.OnBreak != nil {
-			f.OnBreak(err, false)
-		}
-		select {
-		case <-time.After(pause):
-		case <-ctx.Done():
-			return ctx.Err()
-		}
-		pause = min(2*pause, lastPause)
-	}
-}
-
-// callback is an error of the caller's own.
-type callback struct{ error }
-
-// followOnce reads one stream to its end. begins is called once the server has
-// answered, which it may do long before there is news.
-func followOnce(ctx context.Context, conn grpc.ClientConnInterface, req *leadlinev1.FollowRequest, update func(*leadlinev1.FollowResponse) error, begins func()) error {
-	ctx, cancel := context.WithCancel(ctx)
-	defer cancel()
-	st, err := leadlinev1.NewPositionServiceClient(conn).Follow(ctx, req)
-	if err != nil {
-		return err
-	}
-	if head, err := st.Header(); err == nil && head != nil {
-		begins()
-	}
-	for {
-		m, err := st.Recv()
-		switch {
-		case errors.Is(err, io.EOF):
-			return status.Error(codes.Unavailable, "the server ended the stream without a word")
-		case err != nil:
-			return err
-		}
-		if err := update(m); err != nil {
-			return &callback{err}
+			f.OnBreak(err, anew)
 		}
 	}
+	return stream{
+		once: func(ctx context.Context, begins, news func()) error {
+			st, err := leadlinev1.NewPositionServiceClient(conn).Follow(ctx, req)
+			if err != nil {
+				return err
+			}
+			if head, err := st.Header(); err == nil && head != nil {
+				begins() // which may be long before there is news
+			}
+			return read(st, func(m *leadlinev1.FollowResponse) (last bool, err error) {
+				news()
+				req.ResumeToken = m.GetResumeToken()
+				return false, f.OnUpdate(m)
+			})
+		},
+		anew: func(err error) bool {
+			why, _ := WhyOf(err)
+			if req.GetResumeToken() == "" || why.Reason != leadlinev1.Reason_REASON_BAD_TOKEN {
+				return false
+			}
+			req.ResumeToken = ""
+			broke(err, true)
+			return true
+		},
+		broke: func(err error) { broke(err, false) },
+	}.follow(ctx)
 }

@@ -4,7 +4,8 @@
 // where the ordinary tests run it from then on.
 //
 // Building the targets is not counted: they need a build of their own, with
-// coverage instrumentation, which the Go build cache keeps.
+// coverage instrumentation, which the Go build cache keeps. With -part only some
+// packages have their turn; their corpora are run by the ordinary tests in any case.
 package main
 
 import (
@@ -44,24 +45,30 @@ type target struct {
 
 func main() {
 	total := flag.Duration("total", time.Minute, "time that all targets share")
+	part := flag.String("part", "0/1", "which part of the packages, and of how many: 0/3, 1/3 or 2/3 is a third of them")
 	flag.Parse()
+	var which, of int
+	if n, err := fmt.Sscanf(*part, "%d/%d", &which, &of); n != 2 || err != nil || which < 0 || which >= of {
+		fmt.Fprintf(os.Stderr, "fuzz: -part is %q: give 0/3 for the first third of the packages\n", *part)
+		os.Exit(2)
+	}
 	patterns := flag.Args()
 	if len(patterns) == 0 {
 		patterns = []string{"./..."}
 	}
-	if err := run(*total, patterns); err != nil {
+	if err := run(*total, patterns, which, of); err != nil {
 		fmt.Fprintln(os.Stderr, "fuzz:", err)
 		os.Exit(1)
 	}
 }
 
-func run(total time.Duration, patterns []string) error {
+func run(total time.Duration, patterns []string, part, of int) error {
 	work, err := os.MkdirTemp("", "leadline-fuzz-")
 	if err != nil {
 		return err
 	}
 	defer os.RemoveAll(work)
-	targets, err := find(patterns, work)
+	targets, err := find(patterns, part, of, work)
 	if err != nil {
 		return err
 	}
@@ -107,7 +114,7 @@ func together(n int, do func(i int)) {
 // itself then lists its targets.
 var declares = regexp.MustCompile(`(?m)^func Fuzz\w*\(`)
 
-func find(patterns []string, work string) ([]target, error) {
+func find(patterns []string, part, of int, work string) ([]target, error) {
 	const format = `{{.ImportPath}}{{"\t"}}{{.Dir}}{{range .TestGoFiles}}{{"\t"}}{{.}}{{end}}{{range .XTestGoFiles}}{{"\t"}}{{.}}{{end}}`
 	list, err := output("", "go", append([]string{"list", "-f", format}, patterns...)...)
 	if err != nil {
@@ -129,6 +136,11 @@ func find(patterns []string, work string) ([]target, error) {
 			with = append(with, [2]string{pkg, dir})
 		}
 	}
+	kept := with[:0]
+	for i := part; i < len(with); i += of {
+		kept = append(kept, with[i])
+	}
+	with = kept
 	// Linking keeps one processor busy: so several at once.
 	in, errs := make([][]target, len(with)), make([]error, len(with))
 	together(len(with), func(i int) { in[i], errs[i] = targetsOf(with[i][0], with[i][1], work) })
