@@ -33,7 +33,7 @@ test:
 # compiler. -short leaves out what filters for long and what runs the program,
 # which is built without the detector.
 race:
-	CGO_ENABLED=1 $(GO) test -race -short -vet=off -p 3 $(foreach p,$(RACE_PACKAGES),$(if $(wildcard $(p:/...=)/),$(p)))
+	CGO_ENABLED=1 $(GO) test -race -short -vet=off $(foreach p,$(RACE_PACKAGES),$(if $(wildcard $(p:/...=)/),$(p)))
 
 # fuzz fuzzes every target live, or those of a part of the packages; they share FUZZ_TIME.
 fuzz:

@@ -15,8 +15,6 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
-	"runtime"
-	"strconv"
 	"strings"
 )
 
@@ -40,9 +38,8 @@ func run(args []string) (int, error) {
 	if err != nil {
 		return 0, err
 	}
-	// Vet is a step of its own (make vet). Tests wait now and then, for a broker, a
-	// browser or a process: one package more than there are processors fills that.
-	cmd := exec.Command("go", append([]string{"test", "-json", "-vet=off", "-p=" + strconv.Itoa(runtime.GOMAXPROCS(0)+1)}, args...)...)
+	// The linter vets (make vet, make lint).
+	cmd := exec.Command("go", append([]string{"test", "-json", "-vet=off"}, args...)...)
 	cmd.Stderr = os.Stderr
 	events, err := cmd.StdoutPipe()
 	if err != nil {
