@@ -285,8 +285,22 @@ func (p *tab) says(selector, words string) {
 func (p *tab) click(element string) {
 	p.t.Helper()
 	p.await(element, element)
-	at := eval[[2]float64](p, fmt.Sprintf("(() => { const e = %s; e.scrollIntoView({block: 'center'}); const r = e.getBoundingClientRect(); return [r.x + r.width / 2, r.y + r.height / 2]; })()", element))
-	p.clickAt(at[0], at[1])
+	where := fmt.Sprintf("(() => { const e = %s; e.scrollIntoView({block: 'center'}); const r = e.getBoundingClientRect(); return [r.x + r.width / 2, r.y + r.height / 2]; })()", element)
+	// It may move until it is pointed at.
+	for range 100 {
+		at := eval[[2]float64](p, where)
+		p.pointAt(at[0], at[1])
+		if eval[[2]float64](p, where) == at {
+			p.clickAt(at[0], at[1])
+			return
+		}
+	}
+	p.t.Fatalf("%s: does not stand still when it is pointed at", element)
+}
+
+func (p *tab) pointAt(x, y float64) {
+	p.t.Helper()
+	p.do("Input.dispatchMouseEvent", map[string]any{"type": "mouseMoved", "x": x, "y": y, "button": "none"}, nil)
 }
 
 func (p *tab) clickAt(x, y float64) {

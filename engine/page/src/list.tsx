@@ -1,7 +1,7 @@
 // The worry list: one row a vehicle, the worst first.
 import { useComputed } from "@preact/signals";
 import { length } from "./format";
-import { chosen, fleet, link, order } from "./live";
+import { chosen, fleet, holdOrder, link, order } from "./live";
 import { address, shown } from "./route";
 import { clock } from "./settings";
 import { radiiHold, ratio, remarks, silenceWords, statusWords, whereabouts, worry, type Known } from "./worry";
@@ -88,7 +88,7 @@ export function List() {
           {waits} {link.value.state === "live" && <code>leadline feed DRIVE --to {location.host}</code>}
         </p>
       ) : (
-        <ul onKeyDown={keys}>
+        <ul onKeyDown={keys} onPointerMove={holdOrder} onPointerDown={holdOrder}>
           {names.map((name) => (
             <Row key={name} name={name} />
           ))}

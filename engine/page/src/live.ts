@@ -73,12 +73,23 @@ function sort() {
   const now = Date.now();
   const by = [...fleet].map(([name, s]) => ({ name, worry: worry(s.peek(), now) }));
   by.sort((a, b) => b.worry - a.worry || a.name.localeCompare(b.name));
-  const names = by.map((v) => v.name);
+  let names = by.map((v) => v.name);
+  if (now < held) {
+    const before = order.peek();
+    names = [...before.filter((name) => fleet.has(name)), ...names.filter((name) => !before.includes(name))];
+  }
   if (names.join("\n") !== order.peek().join("\n")) order.value = names;
 }
 
-// A list that moves under the finger helps nobody: once a second is enough.
+// A list that moves under the finger helps nobody: once a second is enough, and not
+// while somebody points at it.
 setInterval(sort, 1000);
+let held = 0;
+
+/** Has the vehicles keep their places for a while; new ones come last. */
+export const holdOrder = () => {
+  held = Date.now() + 3000;
+};
 
 const latest = (name: string) => waiting.get(name) ?? fleet.get(name)?.peek();
 
