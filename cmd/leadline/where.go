@@ -18,6 +18,7 @@ type whereOptions struct {
 	area    string
 	asJSON  bool
 	now     bool
+	ago     time.Duration
 	regions []float64
 	risk    float64
 	timeout time.Duration
@@ -35,6 +36,7 @@ func whereCommand() *cobra.Command {
 	o.reach.flags(c, "at")
 	f.BoolVar(&o.asJSON, "json", false, "print each answer as JSON, regions as polygons")
 	f.BoolVar(&o.now, "now", false, "carry the belief on to the present, instead of the last measurement")
+	f.DurationVar(&o.ago, "ago", 0, "ask what is known of so long ago, given all since; at most the suite's look_back_s")
 	f.Float64SliceVar(&o.regions, "region", nil, "percentage whose smallest region is wanted, such as 95; repeat for several")
 	f.Float64Var(&o.risk, "risk", 0, "integrity risk of the protection radius (default: the suite's)")
 	f.StringVar(&o.area, "area", "", "GeoJSON file with one polygon whose probability is wanted")
@@ -54,7 +56,10 @@ func checkRegion(percent float64) error {
 }
 
 func where(c *cobra.Command, o *whereOptions, vehicles []string) error {
-	req := &leadlinev1.WhereRequest{Vehicles: vehicles, PredictToNow: o.now}
+	if o.ago < 0 || c.Flags().Changed("ago") && o.ago == 0 {
+		return fmt.Errorf("--ago is %v: give how long ago, such as 10s", o.ago)
+	}
+	req := &leadlinev1.WhereRequest{Vehicles: vehicles, PredictToNow: o.now, AgoS: o.ago.Seconds()}
 	for _, percent := range o.regions {
 		if err := checkRegion(percent); err != nil {
 			return err
@@ -111,6 +116,9 @@ func (o *whereOptions) print(w io.Writer, answer *leadlinev1.WhereAnswer) {
 	printPosterior(w, p)
 	if s := p.GetPredictedS(); s > 0 {
 		fmt.Fprintf(w, "  %-14s %.1f s beyond the last measurement, by how the vehicle may move\n", "carried on", s)
+	}
+	if s := p.GetHindsightS(); s > 0 {
+		fmt.Fprintf(w, "  %-14s %.1f s that were measured since are in it\n", "looked back", s)
 	}
 	for _, r := range p.GetRegions() {
 		fmt.Fprintf(w, "  %-14s %.4g %% within %.0f m² in %s (polygons with --json)\n", "region", 100*r.GetProbability(), r.GetAreaM2(), count(len(r.GetPolygons()), "piece"))

@@ -36,6 +36,9 @@ type Vehicle struct {
 	// LateWindowS is how late an event may come and still be replayed, 2 s
 	// unless said.
 	LateWindowS float64 `yaml:"late_window_s"`
+	// LookBackS is how long ago a vehicle's server can be asked what is known of it
+	// given all since: LateWindowS unless said.
+	LookBackS float64 `yaml:"look_back_s"`
 	// HoldS is how long a time waits for a motion sensor that is due, 1 s
 	// unless said.
 	HoldS float64 `yaml:"hold_s"`

@@ -61,6 +61,7 @@ func (s *Suite) problems() []Finding {
 	f.unless0("vehicle.integrity_risk", v.IntegrityRisk, 1e-12, 0.01)
 	f.unless0("vehicle.false_alarm_h", v.FalseAlarmH, 0.01, 1e5)
 	f.unless0("vehicle.late_window_s", v.LateWindowS, 1e-3, 3600)
+	f.unless0("vehicle.look_back_s", v.LookBackS, 1e-3, 3600)
 	f.unless0("vehicle.hold_s", v.HoldS, 1e-3, 3600)
 	f.unless0("vehicle.lateral_sigma_m", v.LateralSigmaM, 1e-3, 100)
 	f.unless0("vehicle.stretch_m_per_sqrt_m", v.StretchMPerSqrtM, 1e-6, 100)

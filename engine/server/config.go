@@ -127,6 +127,12 @@ type Foresight interface {
 	Ahead() (*session.Ahead, error)
 }
 
+// Hindsight is a session that knows of earlier times what was measured since.
+// Where uses it for ago_s.
+type Hindsight interface {
+	Earlier(agoS float64) (*session.Earlier, error)
+}
+
 // Limits bound what clients can make the server hold. A limit that is 0 has
 // its default.
 type Limits struct {

@@ -24,6 +24,7 @@ type question struct {
 	area      [][]geo.LonLat
 	risk      float64 // 0 for the suite's
 	toNow     bool
+	agoS      float64 // 0: the latest
 }
 
 // askers is how many vehicles of one question are asked at once.
@@ -74,7 +75,13 @@ func (s *Server) question(req *leadlinev1.WhereRequest) (*question, error) {
 			return nil, badField("vehicles", "where: %v", err)
 		}
 	}
-	q := &question{fractions: req.GetRegionFractions(), toNow: req.GetPredictToNow()}
+	q := &question{fractions: req.GetRegionFractions(), toNow: req.GetPredictToNow(), agoS: req.GetAgoS()}
+	switch {
+	case !(q.agoS >= 0 && q.agoS <= 3600):
+		return nil, badField("ago_s", "where: ago_s: %v: give seconds, 0 to 3600", q.agoS)
+	case q.agoS > 0 && q.toNow:
+		return nil, badField("ago_s", "where: ago_s and predict_to_now ask for two times: leave one out")
+	}
 	if n, most := len(q.fractions), s.cfg.Limits.Regions; n > most {
 		return nil, tooMany("region_fractions", n, most)
 	}
@@ -106,15 +113,15 @@ func (s *Server) ask(ctx context.Context, vehicle string, q *question) *leadline
 	if err != nil {
 		return &leadlinev1.WhereAnswer{Vehicle: vehicle, Failure: failure(err)}
 	}
-	if q.toNow && s.atlas.hold(o.m) { // the belief is carried on though the owner may leave
+	if (q.toNow || q.agoS > 0) && s.atlas.hold(o.m) { // it is read though the owner may leave
 		defer s.releaseMap(o.m)
 	}
 	r := &reply{} // the owner may write it after an error
 	if err := o.do(ctx, func() { *r = o.answer(q) }); err != nil {
 		return &leadlinev1.WhereAnswer{Vehicle: vehicle, Drive: o.drive, Failure: failure(err)}
 	}
-	if r.ahead != nil {
-		r.message, r.err = s.toNow(ctx, o, r, q)
+	if r.ahead != nil || r.earlier != nil {
+		r.message, r.err = s.beside(ctx, o, r, q)
 	}
 	a := &leadlinev1.WhereAnswer{Vehicle: vehicle, Drive: o.drive, PosteriorSha256: r.hash, Ended: r.ended}
 	if r.err != nil {
@@ -126,10 +133,11 @@ func (s *Server) ask(ctx context.Context, vehicle string, q *question) *leadline
 }
 
 // reply is what an owner says: a posterior, a belief that is to be carried on,
-// or why there is neither.
+// what tells of an earlier time, or why there is none of these.
 type reply struct {
 	message   *leadlinev1.Posterior
 	ahead     *session.Ahead
+	earlier   *session.Earlier
 	malformed uint64
 	hash      string
 	ended     bool
@@ -155,14 +163,25 @@ func (o *owner) answer(q *question) reply {
 		}
 		return r
 	}
+	if q.agoS > 0 {
+		h, ok := o.sess.(Hindsight)
+		if !ok {
+			r.err = notAsked("ago_s")
+			return r
+		}
+		if r.earlier, r.err = h.Earlier(q.agoS); r.err != nil {
+			r.err = refuse(leadlinev1.Reason_REASON_NO_POSTERIOR, o.about(), "where: ago_s: vehicle %q: %v", o.vehicle, r.err)
+		}
+		return r
+	}
 	r.message = o.message(p)
 	r.err = more(r.message, o.sess, q)
 	return r
 }
 
-// toNow carries a belief on to the present. It takes up to a second, and runs on
-// the caller's goroutine; few of them do at once.
-func (s *Server) toNow(ctx context.Context, o *owner, r *reply, q *question) (m *leadlinev1.Posterior, err error) {
+// beside carries a belief on to the present, or looks back. It takes a second or
+// more, and runs on the caller's goroutine; few of them do at once.
+func (s *Server) beside(ctx context.Context, o *owner, r *reply, q *question) (m *leadlinev1.Posterior, err error) {
 	select {
 	case s.predictions <- struct{}{}:
 		defer func() { <-s.predictions }()
@@ -171,10 +190,13 @@ func (s *Server) toNow(ctx context.Context, o *owner, r *reply, q *question) (m 
 	}
 	defer func() {
 		if p := recover(); p != nil {
-			s.cfg.Log.Error("belief cannot be carried on", "vehicle", o.vehicle, "drive", o.drive, "panic", p, "stack", string(debug.Stack()))
-			err = refuse(leadlinev1.Reason_REASON_SESSION_FAILED, o.about(), "where: predict_to_now failed for vehicle %q: report it with the server's log, and leave it out", o.vehicle)
+			s.cfg.Log.Error("question failed", "vehicle", o.vehicle, "drive", o.drive, "panic", p, "stack", string(debug.Stack()))
+			err = refuse(leadlinev1.Reason_REASON_SESSION_FAILED, o.about(), "where: predict_to_now or ago_s failed for vehicle %q: report it with the server's log, and leave it out", o.vehicle)
 		}
 	}()
+	if r.earlier != nil {
+		return s.looked(ctx, o, r, q)
+	}
 	now, last := s.cfg.Now(), r.ahead.Time()
 	p, err := r.ahead.Carry(sensor.Time(now.UnixNano()))
 	if err != nil {
@@ -184,6 +206,21 @@ func (s *Server) toNow(ctx context.Context, o *owner, r *reply, q *question) (m 
 	m.Recomputed = o.subject.recomputed
 	m.PredictedS = sensor.Time(p.TimeNS).Seconds(last)
 	return m, more(m, r.ahead, q)
+}
+
+// looked says what is known of an earlier time.
+func (s *Server) looked(ctx context.Context, o *owner, r *reply, q *question) (*leadlinev1.Posterior, error) {
+	p, err := r.earlier.Look(ctx.Err)
+	switch {
+	case ctx.Err() != nil:
+		return nil, status.FromContextError(ctx.Err()).Err()
+	case err != nil:
+		return nil, refuse(leadlinev1.Reason_REASON_NO_POSTERIOR, o.about(), "where: ago_s: vehicle %q: %v", o.vehicle, err)
+	}
+	m := s.message(p, o.vehicle, o.m.Map, r.malformed, s.cfg.Now())
+	m.Recomputed = o.subject.recomputed
+	m.HindsightS = r.earlier.Now().Seconds(sensor.Time(p.TimeNS))
+	return m, more(m, r.earlier, q)
 }
 
 // more adds what a question asks beyond the posterior.

@@ -3,6 +3,7 @@ package session
 import (
 	"errors"
 
+	"leadline/engine/filter"
 	"leadline/engine/sensor"
 	"leadline/engine/summary"
 )
@@ -50,41 +51,57 @@ func (b *Behind) Add(events []sensor.Event) {
 // event, given all events; nil if there is none yet, or none since At was asked last.
 // It is, to the bit, what LookBack over the same events says of that time.
 func (b *Behind) At() (*summary.Posterior, error) {
-	s, l := b.l.s, b.l
+	s := b.l.s
 	if len(s.log.events) == 0 {
 		return nil, nil
 	}
 	if !b.from.state.begun {
 		s.begin()
-		b.from = l.first()
+		b.from = b.l.first()
 	}
-	s.state, s.log.next, s.fresh = b.from.state.clone(), b.from.next, false
+	m, known, here, err := b.l.at(b.from, b.last-b.lag)
+	if m == nil || err != nil {
+		return nil, err
+	}
+	held := len(s.log.events)
+	s.log.drop(here.state.time, false, s.keepPast)
+	here.next -= held - len(s.log.events)
+	b.from = here
+	return b.l.read(m, known), nil
+}
+
+// at is what is known of the latest time that is not after another one, given all
+// events up to the horizon: as a mark of that time, the belief, and where the drive is
+// cut there. The mark is nil if there is none between from and then.
+func (l *looker) at(from cut, until sensor.Time) (*mark, *filter.Belief, cut, error) {
+	s := l.s
+	s.state, s.log.next, s.fresh = from.state.clone(), from.next, false
 	s.desk().work.Record(nil, nil)
-	until := b.last - b.lag
 	var p *summary.Posterior
-	for moved := false; ; moved = true {
+	moved := false
+	for ; ; moved = true {
 		t, end, ok := s.next(true)
 		if !ok || t > until {
-			if !moved {
-				return nil, nil
-			}
 			break
 		}
-		if p = s.step(t, end); p == nil {
-			p = s.summarise() // a time that is passed over otherwise
-		}
+		p = s.step(t, end)
+	}
+	if !moved {
+		return nil, nil, from, nil
+	}
+	here := l.first()
+	if p == nil { // this time is passed over otherwise: what follows must not know that it was not
+		p = s.summarise()
 	}
 	l.marks = nil
 	l.mark(p)
 	m := l.marks[0]
-	s.log.drop(s.state.time, false, s.keepPast)
-	b.from = l.first()
-	if s.log.next == len(s.log.events) {
-		return l.read(&m, s.state.belief.Clone()), nil
+	if here.next == s.horizon() {
+		return &m, here.state.belief, here, nil
 	}
-	k, err := l.stretch(b.from, len(s.log.events), nil, false)
+	k, err := l.stretch(here, s.horizon(), nil, false)
 	if err != nil {
-		return nil, err
+		return nil, nil, from, err
 	}
-	return l.read(&m, k.smoothed), nil
+	return &m, k.smoothed, here, nil
 }

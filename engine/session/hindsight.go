@@ -104,13 +104,21 @@ func newLooker(c Config, o HindsightOptions) (*looker, error) {
 	if err != nil {
 		return nil, err
 	}
-	if gridded(s.state.belief.Moved()) {
-		return nil, errors.New("a grid with velocity axes is not run backward: leave out the suite's velocity_grid to look back")
+	if err := s.runsBackward(); err != nil {
+		return nil, err
 	}
 	if o.TapeBytes == 0 {
 		o.TapeBytes = defaultTapeBytes
 	}
 	return &looker{s: s, HindsightOptions: o}, nil
+}
+
+// runsBackward is nil if what the filter does can be run backward.
+func (s *Session) runsBackward() error {
+	if gridded(s.state.belief.Moved()) {
+		return errors.New("a grid with velocity axes is not run backward: leave out the suite's velocity_grid to look back")
+	}
+	return nil
 }
 
 func (l *looker) first() cut {
@@ -134,7 +142,7 @@ func (l *looker) stretch(from cut, until int, later *known, give bool) (*known, 
 	for every, n := 1, 0; l.s.log.next < until; {
 		t, end, _ := l.s.next(true)
 		p := l.s.step(t, end)
-		if p == nil && until == len(l.s.log.events) && l.s.log.next == until {
+		if p == nil && until == l.s.horizon() && l.s.log.next == until {
 			p = l.s.summarise() // the last time is never passed over
 		}
 		l.mark(p)
@@ -303,6 +311,10 @@ func (l *looker) known(later *known, which func(*known) *filter.Belief) *filter.
 
 // read makes a posterior of what is known later of a mark.
 func (l *looker) read(m *mark, h *filter.Belief) *summary.Posterior {
+	return l.readBy(&l.s.desk().sum, m, h)
+}
+
+func (l *looker) readBy(sum *summary.Summarizer, m *mark, h *filter.Belief) *summary.Posterior {
 	s := l.s
 	b := h.Present()
 	b.Pruned, b.LeftMap, b.Restarted = m.pruned, m.left, m.restarted
@@ -324,7 +336,7 @@ func (l *looker) read(m *mark, h *filter.Belief) *summary.Posterior {
 		in.Names = s.names
 	}
 	p := &summary.Posterior{}
-	if err := d.sum.Summarize(p, &in); err != nil {
+	if err := sum.Summarize(p, &in); err != nil {
 		panic("session: " + err.Error()) // a belief is never empty
 	}
 	p.GapS, p.LostAlarm = m.p.GapS, m.p.LostAlarm

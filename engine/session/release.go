@@ -75,7 +75,8 @@ func (s *Session) finish(n int) {
 }
 
 // snapshot keeps the state now and then, so that there is always one from
-// before the window, and a few within the events that may be held.
+// before the window, and a few within the events that may be held; and some from
+// as long ago as the session may be asked of (Earlier).
 func (s *Session) snapshot() {
 	window := s.suite.Vehicle.LateWindowS
 	now := s.state.time
@@ -84,13 +85,14 @@ func (s *Session) snapshot() {
 		s.state.processed-s.snaps[n-1].processed >= uint64(s.maxWaiting/4) {
 		s.snaps = append(s.snaps, snapshot{time: now, state: s.state.clone()})
 	}
-	for len(s.snaps) > 1 && now.Seconds(s.snaps[1].time) > window {
+	for back := s.lookBackS(); len(s.snaps) > 1 && now.Seconds(s.snaps[1].time) > back; {
 		i := 0
 		if s.snaps[1].hollow {
 			i = 1 // the first is still needed
 		}
 		s.snaps = slices.Delete(s.snaps, i, i+1)
 	}
+	s.thin()
 	s.log.drop(s.snaps[0].time, false, s.keepPast)
 }
 

@@ -151,6 +151,7 @@ export class Client {
         }) | undefined;
         integrityRisk?: number | undefined;
         predictToNow?: boolean | undefined;
+        agoS?: number | undefined;
     }) | undefined, options?: import("@connectrpc/connect").CallOptions | undefined): Promise<import("./leadline/v1/where_pb.js").WhereResponse>;
     /**
      * Tells of vehicles as they move on, of all if none is named. When the stream

@@ -221,6 +221,9 @@ type Posterior struct {
 	// How long before time the last measurement was, s, where it was asked to
 	// carry the belief on to the present by the motion prior; 0 otherwise.
 	PredictedS float64 `protobuf:"fixed64,31,opt,name=predicted_s,json=predictedS,proto3" json:"predicted_s,omitempty"`
+	// How long after time the last measurement in it was made, s, where it was asked
+	// what is now known of an earlier time (ago_s); 0 otherwise.
+	HindsightS float64 `protobuf:"fixed64,40,opt,name=hindsight_s,json=hindsightS,proto3" json:"hindsight_s,omitempty"`
 	// The fingerprint of a newer map of the same name; empty if there is none.
 	// The drive keeps the one it was opened with.
 	NewerMapFingerprint string `protobuf:"bytes,32,opt,name=newer_map_fingerprint,json=newerMapFingerprint,proto3" json:"newer_map_fingerprint,omitempty"`
@@ -491,6 +494,13 @@ func (x *Posterior) GetAgeS() float64 {
 func (x *Posterior) GetPredictedS() float64 {
 	if x != nil {
 		return x.PredictedS
+	}
+	return 0
+}
+
+func (x *Posterior) GetHindsightS() float64 {
+	if x != nil {
+		return x.HindsightS
 	}
 	return 0
 }
@@ -1616,7 +1626,7 @@ var File_leadline_v1_posterior_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\n" +
-	"\x1bleadline/v1/posterior.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/place.proto\"\xa1\f\n" +
+	"\x1bleadline/v1/posterior.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/place.proto\"\xc2\f\n" +
 	"\tPosterior\x12.\n" +
 	"\x04time\x18\x01 \x01(\v2\x1a.google.protobuf.TimestampR\x04time\x12\x18\n" +
 	"\avehicle\x18\x02 \x01(\tR\avehicle\x12\x10\n" +
@@ -1656,7 +1666,9 @@ const file_leadline_v1_posterior_proto_rawDesc = "" +
 	"\x05as_of\x18\x19 \x01(\v2\x1a.google.protobuf.TimestampR\x04asOf\x12\x13\n" +
 	"\x05age_s\x18\x1a \x01(\x01R\x04ageS\x12\x1f\n" +
 	"\vpredicted_s\x18\x1f \x01(\x01R\n" +
-	"predictedS\x122\n" +
+	"predictedS\x12\x1f\n" +
+	"\vhindsight_s\x18( \x01(\x01R\n" +
+	"hindsightS\x122\n" +
 	"\x15newer_map_fingerprint\x18  \x01(\tR\x13newerMapFingerprint\x12*\n" +
 	"\x06alarms\x18! \x03(\v2\x12.leadline.v1.AlarmR\x06alarms\x12:\n" +
 	"\vconsistency\x18\" \x03(\v2\x18.leadline.v1.ConsistencyR\vconsistency\x12\x17\n" +

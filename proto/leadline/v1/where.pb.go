@@ -37,7 +37,12 @@ type WhereRequest struct {
 	// Carry the belief on to the server's present time, as over a gap, instead
 	// of answering for the last measurement. The session stays as it is. A drive
 	// that has ended is not carried on.
-	PredictToNow  bool `protobuf:"varint,5,opt,name=predict_to_now,json=predictToNow,proto3" json:"predict_to_now,omitempty"`
+	PredictToNow bool `protobuf:"varint,5,opt,name=predict_to_now,json=predictToNow,proto3" json:"predict_to_now,omitempty"`
+	// Answer for the latest time at least this long before the last measurement,
+	// given all that was measured since, s: above 0, at most the suite's
+	// look_back_s. The session stays as it is. Not with predict_to_now, and not of
+	// a drive that has ended. 0 answers for the last measurement.
+	AgoS          float64 `protobuf:"fixed64,6,opt,name=ago_s,json=agoS,proto3" json:"ago_s,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -105,6 +110,13 @@ func (x *WhereRequest) GetPredictToNow() bool {
 		return x.PredictToNow
 	}
 	return false
+}
+
+func (x *WhereRequest) GetAgoS() float64 {
+	if x != nil {
+		return x.AgoS
+	}
+	return 0
 }
 
 // WhereResponse answers for each vehicle, in the order of the request.
@@ -256,13 +268,14 @@ var File_leadline_v1_where_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_where_proto_rawDesc = "" +
 	"\n" +
-	"\x17leadline/v1/where.proto\x12\vleadline.v1\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x18leadline/v1/reason.proto\"\xe4\x01\n" +
+	"\x17leadline/v1/where.proto\x12\vleadline.v1\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x18leadline/v1/reason.proto\"\xf9\x01\n" +
 	"\fWhereRequest\x12\x1a\n" +
 	"\bvehicles\x18\x01 \x03(\tR\bvehicles\x12)\n" +
 	"\x10region_fractions\x18\x02 \x03(\x01R\x0fregionFractions\x12(\n" +
 	"\x04area\x18\x03 \x01(\v2\x14.leadline.v1.PolygonR\x04area\x12*\n" +
 	"\x0eintegrity_risk\x18\x04 \x01(\x01H\x00R\rintegrityRisk\x88\x01\x01\x12$\n" +
-	"\x0epredict_to_now\x18\x05 \x01(\bR\fpredictToNowB\x11\n" +
+	"\x0epredict_to_now\x18\x05 \x01(\bR\fpredictToNow\x12\x13\n" +
+	"\x05ago_s\x18\x06 \x01(\x01R\x04agoSB\x11\n" +
 	"\x0f_integrity_risk\"]\n" +
 	"\rWhereResponse\x122\n" +
 	"\aanswers\x18\x01 \x03(\v2\x18.leadline.v1.WhereAnswerR\aanswers\x12\x18\n" +

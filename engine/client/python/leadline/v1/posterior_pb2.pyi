@@ -144,7 +144,7 @@ class Place(_message.Message):
     def __init__(self, position: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., probability: _Optional[float] = ..., edge: _Optional[int] = ..., along_m: _Optional[float] = ..., name: _Optional[str] = ...) -> None: ...
 
 class Posterior(_message.Message):
-    __slots__ = ["age_s", "alarms", "alert_limit_m", "area_probability", "as_of", "consistency", "counts", "covariance", "durable", "edge_count", "edge_rest", "edges", "entropy_nats", "evidence", "gap_s", "heading", "log_evidence", "lost", "lost_alarm", "map", "map_fingerprint", "mean", "mode_count", "mode_rest", "modes", "most_probable", "newer_map_fingerprint", "nuisances", "off_map", "predicted_s", "protection", "radii", "recomputed", "regions", "revises", "speed", "status", "time", "vehicle"]
+    __slots__ = ["age_s", "alarms", "alert_limit_m", "area_probability", "as_of", "consistency", "counts", "covariance", "durable", "edge_count", "edge_rest", "edges", "entropy_nats", "evidence", "gap_s", "heading", "hindsight_s", "log_evidence", "lost", "lost_alarm", "map", "map_fingerprint", "mean", "mode_count", "mode_rest", "modes", "most_probable", "newer_map_fingerprint", "nuisances", "off_map", "predicted_s", "protection", "radii", "recomputed", "regions", "revises", "speed", "status", "time", "vehicle"]
     AGE_S_FIELD_NUMBER: _ClassVar[int]
     ALARMS_FIELD_NUMBER: _ClassVar[int]
     ALERT_LIMIT_M_FIELD_NUMBER: _ClassVar[int]
@@ -161,6 +161,7 @@ class Posterior(_message.Message):
     EVIDENCE_FIELD_NUMBER: _ClassVar[int]
     GAP_S_FIELD_NUMBER: _ClassVar[int]
     HEADING_FIELD_NUMBER: _ClassVar[int]
+    HINDSIGHT_S_FIELD_NUMBER: _ClassVar[int]
     LOG_EVIDENCE_FIELD_NUMBER: _ClassVar[int]
     LOST_ALARM_FIELD_NUMBER: _ClassVar[int]
     LOST_FIELD_NUMBER: _ClassVar[int]
@@ -200,6 +201,7 @@ class Posterior(_message.Message):
     evidence: _containers.RepeatedCompositeFieldContainer[Evidence]
     gap_s: float
     heading: Direction
+    hindsight_s: float
     log_evidence: float
     lost: float
     lost_alarm: bool
@@ -223,7 +225,7 @@ class Posterior(_message.Message):
     status: Status
     time: _timestamp_pb2.Timestamp
     vehicle: str
-    def __init__(self, time: _Optional[_Union[_timestamp_pb2.Timestamp, _Mapping]] = ..., vehicle: _Optional[str] = ..., map: _Optional[str] = ..., map_fingerprint: _Optional[str] = ..., status: _Optional[_Union[Status, str]] = ..., mean: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., covariance: _Optional[_Union[_place_pb2.Covariance, _Mapping]] = ..., most_probable: _Optional[_Union[Place, _Mapping]] = ..., modes: _Optional[_Iterable[_Union[Mode, _Mapping]]] = ..., mode_count: _Optional[int] = ..., mode_rest: _Optional[float] = ..., heading: _Optional[_Union[Direction, _Mapping]] = ..., speed: _Optional[_Union[SpeedEstimate, _Mapping]] = ..., edges: _Optional[_Iterable[_Union[EdgeProbability, _Mapping]]] = ..., edge_count: _Optional[int] = ..., edge_rest: _Optional[float] = ..., radii: _Optional[_Union[Radii, _Mapping]] = ..., regions: _Optional[_Iterable[_Union[Region, _Mapping]]] = ..., area_probability: _Optional[float] = ..., protection: _Optional[_Union[Protection, _Mapping]] = ..., nuisances: _Optional[_Iterable[_Union[Nuisance, _Mapping]]] = ..., entropy_nats: _Optional[float] = ..., evidence: _Optional[_Iterable[_Union[Evidence, _Mapping]]] = ..., log_evidence: _Optional[float] = ..., counts: _Optional[_Union[Counts, _Mapping]] = ..., gap_s: _Optional[float] = ..., durable: bool = ..., revises: bool = ..., as_of: _Optional[_Union[_timestamp_pb2.Timestamp, _Mapping]] = ..., age_s: _Optional[float] = ..., predicted_s: _Optional[float] = ..., newer_map_fingerprint: _Optional[str] = ..., alarms: _Optional[_Iterable[_Union[Alarm, _Mapping]]] = ..., consistency: _Optional[_Iterable[_Union[Consistency, _Mapping]]] = ..., off_map: _Optional[float] = ..., lost: _Optional[float] = ..., lost_alarm: bool = ..., alert_limit_m: _Optional[float] = ..., recomputed: bool = ...) -> None: ...
+    def __init__(self, time: _Optional[_Union[_timestamp_pb2.Timestamp, _Mapping]] = ..., vehicle: _Optional[str] = ..., map: _Optional[str] = ..., map_fingerprint: _Optional[str] = ..., status: _Optional[_Union[Status, str]] = ..., mean: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., covariance: _Optional[_Union[_place_pb2.Covariance, _Mapping]] = ..., most_probable: _Optional[_Union[Place, _Mapping]] = ..., modes: _Optional[_Iterable[_Union[Mode, _Mapping]]] = ..., mode_count: _Optional[int] = ..., mode_rest: _Optional[float] = ..., heading: _Optional[_Union[Direction, _Mapping]] = ..., speed: _Optional[_Union[SpeedEstimate, _Mapping]] = ..., edges: _Optional[_Iterable[_Union[EdgeProbability, _Mapping]]] = ..., edge_count: _Optional[int] = ..., edge_rest: _Optional[float] = ..., radii: _Optional[_Union[Radii, _Mapping]] = ..., regions: _Optional[_Iterable[_Union[Region, _Mapping]]] = ..., area_probability: _Optional[float] = ..., protection: _Optional[_Union[Protection, _Mapping]] = ..., nuisances: _Optional[_Iterable[_Union[Nuisance, _Mapping]]] = ..., entropy_nats: _Optional[float] = ..., evidence: _Optional[_Iterable[_Union[Evidence, _Mapping]]] = ..., log_evidence: _Optional[float] = ..., counts: _Optional[_Union[Counts, _Mapping]] = ..., gap_s: _Optional[float] = ..., durable: bool = ..., revises: bool = ..., as_of: _Optional[_Union[_timestamp_pb2.Timestamp, _Mapping]] = ..., age_s: _Optional[float] = ..., predicted_s: _Optional[float] = ..., hindsight_s: _Optional[float] = ..., newer_map_fingerprint: _Optional[str] = ..., alarms: _Optional[_Iterable[_Union[Alarm, _Mapping]]] = ..., consistency: _Optional[_Iterable[_Union[Consistency, _Mapping]]] = ..., off_map: _Optional[float] = ..., lost: _Optional[float] = ..., lost_alarm: bool = ..., alert_limit_m: _Optional[float] = ..., recomputed: bool = ...) -> None: ...
 
 class Protection(_message.Message):
     __slots__ = ["radius_m", "risk", "unbounded_reason"]

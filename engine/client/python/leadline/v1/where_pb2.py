@@ -16,7 +16,7 @@ from leadline.v1 import posterior_pb2 as leadline_dot_v1_dot_posterior__pb2
 from leadline.v1 import reason_pb2 as leadline_dot_v1_dot_reason__pb2
 
 
-DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x17leadline/v1/where.proto\x12\x0bleadline.v1\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x18leadline/v1/reason.proto\"\xe4\x01\n\x0cWhereRequest\x12\x1a\n\x08vehicles\x18\x01 \x03(\tR\x08vehicles\x12)\n\x10region_fractions\x18\x02 \x03(\x01R\x0fregionFractions\x12(\n\x04\x61rea\x18\x03 \x01(\x0b\x32\x14.leadline.v1.PolygonR\x04\x61rea\x12*\n\x0eintegrity_risk\x18\x04 \x01(\x01H\x00R\rintegrityRisk\x88\x01\x01\x12$\n\x0epredict_to_now\x18\x05 \x01(\x08R\x0cpredictToNowB\x11\n\x0f_integrity_risk\"]\n\rWhereResponse\x12\x32\n\x07\x61nswers\x18\x01 \x03(\x0b\x32\x18.leadline.v1.WhereAnswerR\x07\x61nswers\x12\x18\n\x07version\x18\x02 \x01(\tR\x07version\"\xe4\x01\n\x0bWhereAnswer\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\x12\x14\n\x05\x64rive\x18\x02 \x01(\tR\x05\x64rive\x12\x34\n\tposterior\x18\x03 \x01(\x0b\x32\x16.leadline.v1.PosteriorR\tposterior\x12)\n\x10posterior_sha256\x18\x04 \x01(\tR\x0fposteriorSha256\x12\x14\n\x05\x65nded\x18\x05 \x01(\x08R\x05\x65nded\x12.\n\x07\x66\x61ilure\x18\x06 \x01(\x0b\x32\x14.leadline.v1.FailureR\x07\x66\x61ilureB\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
+DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x17leadline/v1/where.proto\x12\x0bleadline.v1\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x18leadline/v1/reason.proto\"\xf9\x01\n\x0cWhereRequest\x12\x1a\n\x08vehicles\x18\x01 \x03(\tR\x08vehicles\x12)\n\x10region_fractions\x18\x02 \x03(\x01R\x0fregionFractions\x12(\n\x04\x61rea\x18\x03 \x01(\x0b\x32\x14.leadline.v1.PolygonR\x04\x61rea\x12*\n\x0eintegrity_risk\x18\x04 \x01(\x01H\x00R\rintegrityRisk\x88\x01\x01\x12$\n\x0epredict_to_now\x18\x05 \x01(\x08R\x0cpredictToNow\x12\x13\n\x05\x61go_s\x18\x06 \x01(\x01R\x04\x61goSB\x11\n\x0f_integrity_risk\"]\n\rWhereResponse\x12\x32\n\x07\x61nswers\x18\x01 \x03(\x0b\x32\x18.leadline.v1.WhereAnswerR\x07\x61nswers\x12\x18\n\x07version\x18\x02 \x01(\tR\x07version\"\xe4\x01\n\x0bWhereAnswer\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\x12\x14\n\x05\x64rive\x18\x02 \x01(\tR\x05\x64rive\x12\x34\n\tposterior\x18\x03 \x01(\x0b\x32\x16.leadline.v1.PosteriorR\tposterior\x12)\n\x10posterior_sha256\x18\x04 \x01(\tR\x0fposteriorSha256\x12\x14\n\x05\x65nded\x18\x05 \x01(\x08R\x05\x65nded\x12.\n\x07\x66\x61ilure\x18\x06 \x01(\x0b\x32\x14.leadline.v1.FailureR\x07\x66\x61ilureB\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
 
 _builder.BuildMessageAndEnumDescriptors(DESCRIPTOR, globals())
 _builder.BuildTopDescriptorsAndMessages(DESCRIPTOR, 'leadline.v1.where_pb2', globals())
@@ -25,9 +25,9 @@ if _descriptor._USE_C_DESCRIPTORS == False:
   DESCRIPTOR._options = None
   DESCRIPTOR._serialized_options = b'Z%leadline/proto/leadline/v1;leadlinev1'
   _WHEREREQUEST._serialized_start=121
-  _WHEREREQUEST._serialized_end=349
-  _WHERERESPONSE._serialized_start=351
-  _WHERERESPONSE._serialized_end=444
-  _WHEREANSWER._serialized_start=447
-  _WHEREANSWER._serialized_end=675
+  _WHEREREQUEST._serialized_end=370
+  _WHERERESPONSE._serialized_start=372
+  _WHERERESPONSE._serialized_end=465
+  _WHEREANSWER._serialized_start=468
+  _WHEREANSWER._serialized_end=696
 # @@protoc_insertion_point(module_scope)

@@ -25,18 +25,20 @@ class WhereAnswer(_message.Message):
     def __init__(self, vehicle: _Optional[str] = ..., drive: _Optional[str] = ..., posterior: _Optional[_Union[_posterior_pb2.Posterior, _Mapping]] = ..., posterior_sha256: _Optional[str] = ..., ended: bool = ..., failure: _Optional[_Union[_reason_pb2.Failure, _Mapping]] = ...) -> None: ...
 
 class WhereRequest(_message.Message):
-    __slots__ = ["area", "integrity_risk", "predict_to_now", "region_fractions", "vehicles"]
+    __slots__ = ["ago_s", "area", "integrity_risk", "predict_to_now", "region_fractions", "vehicles"]
+    AGO_S_FIELD_NUMBER: _ClassVar[int]
     AREA_FIELD_NUMBER: _ClassVar[int]
     INTEGRITY_RISK_FIELD_NUMBER: _ClassVar[int]
     PREDICT_TO_NOW_FIELD_NUMBER: _ClassVar[int]
     REGION_FRACTIONS_FIELD_NUMBER: _ClassVar[int]
     VEHICLES_FIELD_NUMBER: _ClassVar[int]
+    ago_s: float
     area: _place_pb2.Polygon
     integrity_risk: float
     predict_to_now: bool
     region_fractions: _containers.RepeatedScalarFieldContainer[float]
     vehicles: _containers.RepeatedScalarFieldContainer[str]
-    def __init__(self, vehicles: _Optional[_Iterable[str]] = ..., region_fractions: _Optional[_Iterable[float]] = ..., area: _Optional[_Union[_place_pb2.Polygon, _Mapping]] = ..., integrity_risk: _Optional[float] = ..., predict_to_now: bool = ...) -> None: ...
+    def __init__(self, vehicles: _Optional[_Iterable[str]] = ..., region_fractions: _Optional[_Iterable[float]] = ..., area: _Optional[_Union[_place_pb2.Polygon, _Mapping]] = ..., integrity_risk: _Optional[float] = ..., predict_to_now: bool = ..., ago_s: _Optional[float] = ...) -> None: ...
 
 class WhereResponse(_message.Message):
     __slots__ = ["answers", "version"]

@@ -243,6 +243,14 @@ export declare type Posterior = Message<"leadline.v1.Posterior"> & {
   predictedS: number;
 
   /**
+   * How long after time the last measurement in it was made, s, where it was asked
+   * what is now known of an earlier time (ago_s); 0 otherwise.
+   *
+   * @generated from field: double hindsight_s = 40;
+   */
+  hindsightS: number;
+
+  /**
    * The fingerprint of a newer map of the same name; empty if there is none.
    * The drive keeps the one it was opened with.
    *

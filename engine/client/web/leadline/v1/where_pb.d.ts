@@ -57,6 +57,16 @@ export declare type WhereRequest = Message<"leadline.v1.WhereRequest"> & {
    * @generated from field: bool predict_to_now = 5;
    */
   predictToNow: boolean;
+
+  /**
+   * Answer for the latest time at least this long before the last measurement,
+   * given all that was measured since, s: above 0, at most the suite's
+   * look_back_s. The session stays as it is. Not with predict_to_now, and not of
+   * a drive that has ended. 0 answers for the last measurement.
+   *
+   * @generated from field: double ago_s = 6;
+   */
+  agoS: number;
 };
 
 /**
