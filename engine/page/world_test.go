@@ -12,6 +12,7 @@ import (
 	"time"
 
 	"google.golang.org/grpc"
+	"google.golang.org/grpc/metadata"
 
 	"leadline/engine/client"
 	"leadline/engine/drivefile"
@@ -128,7 +129,16 @@ type running struct {
 	origin  string
 	conn    *grpc.ClientConn
 	calls   leadlinev1.PositionServiceClient
-	stop    func() // at once, streams are cut off
+	stop    func()            // at once, streams are cut off
+	shown   map[string]string // tokens by vehicle, where the server asks who feeds one
+}
+
+// as is a context whose calls show a token.
+func (r *running) as(token string) context.Context {
+	if token == "" {
+		return r.t.Context()
+	}
+	return metadata.AppendToOutgoingContext(r.t.Context(), "authorization", "Bearer "+token)
 }
 
 // serve starts a server on an address until the test ends.
@@ -178,7 +188,7 @@ func (r *running) open(d *drivefile.Drive, as string, start *wire.Start) *client
 	if start != nil {
 		h.Start = *start
 	}
-	f, err := client.Open(r.t.Context(), r.conn, client.Drive{Header: wire.FromHeader(h), Name: "drive", Batch: 20})
+	f, err := client.Open(r.as(r.shown[as]), r.conn, client.Drive{Header: wire.FromHeader(h), Name: "drive", Batch: 20})
 	if err != nil {
 		r.t.Fatal(err)
 	}

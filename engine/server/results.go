@@ -25,7 +25,6 @@ import (
 
 // Bounds of what is read in the folder of results.
 const (
-	maxResults     = 10_000    // runs that are found
 	resultDepth    = 3         // folders down: STUDY/SETTING/DRIVE
 	maxResultName  = 1024      // bytes
 	maxResultJSON  = 1 << 20   // bytes of run.json and of score.json
@@ -37,34 +36,42 @@ const (
 // neither a name nor a link in it leads out.
 type archive struct{ root *os.Root }
 
-// names finds runs: folders with a run.json.
-func (a *archive) names(ctx context.Context) (names []string, err error) {
+// names finds runs, folders with a run.json: up to so many of those that follow one, in
+// the order of a walk through the folders.
+func (a *archive) names(ctx context.Context, after string, most int) (names []string, err error) {
 	err = fs.WalkDir(a.root.FS(), ".", func(at string, d fs.DirEntry, err error) error {
 		switch {
 		case ctx.Err() != nil:
 			return ctx.Err()
-		case err != nil && at == ".":
+		case at == ".":
 			return err
 		case err != nil:
 			return fs.SkipDir // a folder that cannot be read holds no results
 		case !d.IsDir():
 			return nil
-		case at != "." && strings.HasPrefix(d.Name(), "."):
+		case strings.HasPrefix(d.Name(), "."):
 			return fs.SkipDir // a run that is being written
+		case walked(at, after):
+			return fs.SkipDir
 		}
-		if _, err := a.root.Lstat(filepath.Join(filepath.FromSlash(at), results.RunFile)); err == nil && at != "." {
-			if names = append(names, at); len(names) == maxResults {
+		if _, err := a.root.Lstat(filepath.Join(filepath.FromSlash(at), results.RunFile)); err == nil {
+			if names = append(names, at); len(names) == most {
 				return fs.SkipAll
 			}
 			return fs.SkipDir
 		}
-		if at != "." && strings.Count(at, "/") == resultDepth-1 {
+		if strings.Count(at, "/") == resultDepth-1 {
 			return fs.SkipDir
 		}
 		return nil
 	})
-	slices.Sort(names)
 	return names, err
+}
+
+// walked reports whether a walk that has come to a run is past a folder and all that is
+// in it.
+func walked(folder, run string) bool {
+	return slices.Compare(strings.Split(folder, "/"), strings.Split(run, "/")) <= 0 && !strings.HasPrefix(run, folder+"/")
 }
 
 // json reads a file of a run.
@@ -129,20 +136,16 @@ func (s *Server) ListResults(ctx context.Context, req *leadlinev1.ListResultsReq
 		return nil, err
 	}
 	defer done()
-	names, err := a.names(ctx)
+	names, err := a.names(ctx, string(after), size+1) // one more says that there are more
 	if err != nil {
 		return nil, resultTrouble(ctx, ".", err)
 	}
 	out := &leadlinev1.ListResultsResponse{}
-	for _, name := range names {
-		if name <= string(after) {
-			continue
-		}
-		if len(out.GetResults()) == size {
-			out.NextPageToken = base64.RawURLEncoding.EncodeToString([]byte(out.GetResults()[size-1].GetName()))
-			break
-		}
+	for _, name := range names[:min(len(names), size)] {
 		out.Results = append(out.Results, a.describe(name))
+	}
+	if len(names) > size {
+		out.NextPageToken = base64.RawURLEncoding.EncodeToString([]byte(names[size-1]))
 	}
 	return out, nil
 }

@@ -50,7 +50,7 @@ func resultsIn(t *testing.T, name string, but ...string) string {
 func TestResults(t *testing.T) {
 	dir := resultsIn(t, "given/van")
 	outside := resultsIn(t, "other/van")
-	for _, name := range []string{"given/bent", "given/.half", "a/b/c/deep", "a/b/c"} {
+	for _, name := range []string{"given/bent", "given/.half", "given-more", "a/b/c/deep", "a/b/c"} {
 		if err := os.MkdirAll(filepath.Join(dir, name), 0o755); err != nil {
 			t.Fatal(err)
 		}
@@ -66,8 +66,9 @@ func TestResults(t *testing.T) {
 	_, conn := serve(t, Config{Results: dir})
 	calls := leadlinev1.NewPositionServiceClient(conn)
 	var names []string
-	for token := ""; ; {
-		page, err := calls.ListResults(limited(t), &leadlinev1.ListResultsRequest{PageSize: 2, PageToken: token})
+	const order = "a/b/c given/bent given/van given-more" // folder by folder
+	for token, size := "", uint32(1); size < 6; {
+		page, err := calls.ListResults(limited(t), &leadlinev1.ListResultsRequest{PageSize: size, PageToken: token})
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -78,11 +79,11 @@ func TestResults(t *testing.T) {
 			}
 		}
 		if token = page.GetNextPageToken(); token == "" {
-			break
+			if got := strings.Join(names, " "); got != order {
+				t.Errorf("by %d: %s", size, got)
+			}
+			names, size = nil, size+1
 		}
-	}
-	if got := strings.Join(names, " "); got != "a/b/c given/bent given/van" {
-		t.Errorf("results %s", got)
 	}
 	got, err := calls.ReadResult(limited(t), &leadlinev1.ReadResultRequest{Name: "given/van"})
 	if err != nil {

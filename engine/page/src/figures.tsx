@@ -2,6 +2,7 @@
 // was measured last.
 import { useMemo } from "preact/hooks";
 import { useSignal } from "@preact/signals";
+import { Ended, EndButton } from "./ending";
 import { clockTimes, duration, figure, length, percent, speed, utcTime } from "./format";
 import { chosen, chosenKnown, close, closeTrouble, past } from "./live";
 import { measured, nuisanceName } from "./measured";
@@ -59,6 +60,8 @@ export function Figures() {
       <Places />
       <History />
       <Last />
+      <div class="choices">{k && !k.over && <EndButton vehicle={k.vehicle} drive={k.drive} />}</div>
+      <Ended />
     </>
   );
 }

@@ -3,9 +3,10 @@ import { Code, ConnectError } from "@connectrpc/connect";
 import type { MessageInitShape } from "@bufbuild/protobuf";
 import type { FollowRequestSchema, FollowResponse } from "../../client/web/leadline/v1/follow_pb.js";
 import { calls, sentence } from "./api";
-import { noteIdentity, token } from "./identity";
+import { needsRole, noteIdentity, token } from "./identity";
 
-export type Link = { state: "connecting" | "live" | "away"; why: string };
+/** Denied: who asks may not know, and nothing is asked until the token is another. */
+export type Link = { state: "connecting" | "live" | "away" | "denied"; why: string };
 
 type Listener = {
   news(m: FollowResponse): void;
@@ -58,6 +59,12 @@ export function follow(wishes: MessageInitShape<typeof FollowRequestSchema>, on:
         if (stopped) return;
         if (ConnectError.from(e).code === Code.InvalidArgument && resumeToken) {
           resumeToken = ""; // the server has begun anew
+          continue;
+        }
+        const lacking = needsRole(e, "Seeing positions", "dispatcher", "analyst");
+        if (lacking) {
+          on.link({ state: "denied", why: lacking });
+          while (token.value === asked && !stopped) await sleep(250);
           continue;
         }
         on.link({ state: "away", why: sentence(e) });

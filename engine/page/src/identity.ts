@@ -18,10 +18,14 @@ export const token = signal(stored());
 /** Why the server does not take who asks, in words; empty if it does. */
 export const identityTrouble = signal("");
 
+/** Whether another token is to be asked for, since this one's roles do not allow all. */
+export const wantsToken = signal(false);
+
 /** Takes another token, for as long as the tab is open. */
 export function useToken(text: string) {
   token.value = text.trim();
   identityTrouble.value = "";
+  wantsToken.value = false;
   try {
     sessionStorage.setItem(key, token.value);
   } catch {
@@ -50,4 +54,12 @@ export function noteIdentity(e: unknown): boolean {
     ? `Your identity has expired or is not known here: enter a new token. The server says: ${error.rawMessage}`
     : `This server wants to know who you are: enter your token. The server says: ${error.rawMessage}`;
   return true;
+}
+
+/** What to say where a call needs a role that the caller has not; undefined if that is not what is wrong. */
+export function needsRole(e: unknown, what: string, ...roles: string[]): string | undefined {
+  const error = ConnectError.from(e);
+  if (error.code !== Code.PermissionDenied || error.details.length === 0) return undefined;
+  wantsToken.value = true;
+  return `${what} needs the role ${roles.join(" or ")}, which you have not. Enter a token that has it, above, or ask somebody who has one.`;
 }

@@ -70,7 +70,7 @@ function keys(e: KeyboardEvent) {
 
 export function List() {
   const names = order.value;
-  const waits = { connecting: "Asking the server who is here.", away: "Nobody is known here while the server does not answer.", live: "No vehicle is here yet. It shows as soon as one is fed, such as by" }[link.value.state];
+  const waits = { connecting: "Asking the server who is here.", away: "Nobody is known here while the server does not answer.", denied: link.value.why, live: "No vehicle is here yet. It shows as soon as one is fed, such as by" }[link.value.state];
   return (
     <section class="list" aria-label="Vehicles, worst first">
       <h2>

@@ -4,8 +4,9 @@ import { render } from "preact";
 import { Ahead } from "./ahead";
 import { Alarms, AlarmSound } from "./alarms";
 import { Chances } from "./chances";
+import { EndQuestion } from "./ending";
 import { duration } from "./format";
-import { identityTrouble, token, useToken } from "./identity";
+import { identityTrouble, token, useToken, wantsToken } from "./identity";
 import { Figures } from "./figures";
 import { List } from "./list";
 import { chosen, choose, heardAt, link, openAlarms, order, start } from "./live";
@@ -26,12 +27,13 @@ function Connection() {
   const age = heardAt.value ? (clock.value - heardAt.value) / 1000 : 0;
   const old = heardAt.value ? ` What is shown is ${duration(age)} old.` : "";
   if (l.state === "away") return <p class="connection bad" role="status">{l.why} Trying again.{old}</p>;
+  if (l.state === "denied") return <p class="connection" role="status">Positions are not shown.</p>;
   if (l.state === "connecting") return <p class="connection" role="status">Connecting.</p>;
   return <p class={`connection ${age > 5 ? "" : "good"}`} role="status">{age > 5 ? `Connected; no news for ${duration(age - (age % 5))}.` : "Live."}</p>;
 }
 
 function Identity() {
-  if (!identityTrouble.value) return null;
+  if (!identityTrouble.value && !wantsToken.value) return null;
   return (
     <form
       class="identity"
@@ -40,11 +42,16 @@ function Identity() {
         useToken(new FormData(e.currentTarget).get("token") as string);
       }}
     >
-      <p role="alert">{identityTrouble.value}</p>
+      <p role="alert">{identityTrouble.value || "You may do more with a token that has another role."}</p>
       <label>
         Token <input name="token" type="password" autocomplete="off" defaultValue={token.value} required />
       </label>
       <button>Use it</button>
+      {!identityTrouble.value && (
+        <button type="button" onClick={() => (wantsToken.value = false)}>
+          Go on without
+        </button>
+      )}
     </form>
   );
 }
@@ -91,6 +98,7 @@ function Page() {
       </header>
       <Identity />
       <AlarmSound />
+      <EndQuestion />
       <main id="content" tabIndex={-1} class={v}>
         {(v === "now" || v === "chances") && (
           <>

@@ -4,6 +4,7 @@ import { useEffect } from "preact/hooks";
 import { MapKind, type MapDescription } from "../../client/web/leadline/v1/map_pb.js";
 import { calls, sentence, soon } from "./api";
 import { Copy, shellWord } from "./copying";
+import { Drives } from "./drives";
 import { figure } from "./format";
 import { link } from "./live";
 
@@ -72,7 +73,8 @@ export function Maps() {
   useEffect(() => void load(), [link.value.state]);
   const command = () => ["leadline", "map", "send", "MAP.roads.arrow", "--at", location.host].map(shellWord).join(" ");
   return (
-    <section class="page" aria-label="Maps and suites">
+    <section class="page" aria-label="At the server: drives, maps and suites">
+      <Drives />
       <h2>Maps</h2>
       {trouble.value && <p class="note bad">{trouble.value}</p>}
       {!maps.value && !trouble.value && <p class="empty">Asking the server for its maps.</p>}

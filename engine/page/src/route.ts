@@ -9,7 +9,7 @@ export const views = [
   ["ahead", "Ahead"],
   ["past", "Past runs"],
   ["alarms", "Alarms"],
-  ["maps", "Maps and suites"],
+  ["maps", "At the server"],
 ] as const;
 export type ViewName = (typeof views)[number][0];
 
