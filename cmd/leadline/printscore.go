@@ -86,6 +86,10 @@ func printScore(w io.Writer, run *sweep.Outcome) error {
 	if l := s.LookedBack; l != nil {
 		printLookedBack(line, l)
 	}
+	if l := s.Lagged; l != nil && l.Figures.RMSEM != nil {
+		f := l.Figures
+		line("lagged", "%g s later: rms %.2f m, 50 %% %.2f m, 95 %% %.2f m, greatest %.2f m over %d", l.LagS, *f.RMSEM, *f.P50M, *f.P95M, *f.MaxM, f.Scored)
+	}
 	for _, i := range s.Sensors {
 		if i.Whiteness != nil && (*i.Whiteness < 1e-3 || math.Abs(i.Mean) > 0.5 || i.SD > 1.5) {
 			line("innovations", "of %s (%s): mean %+.2f, sd %.2f (0 and 1 are right), whiteness p %.2g over %d", i.Sensor, i.Kind, i.Mean, i.SD, *i.Whiteness, i.Scores)

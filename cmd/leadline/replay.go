@@ -32,6 +32,7 @@ type replayOptions struct {
 	estimateTruth bool
 	holdOutFixes  bool
 	smooth, path  bool
+	lag           time.Duration
 	also          []string
 	beliefAt      []string
 	over          overOptions
@@ -69,6 +70,7 @@ what is done; the same command goes on from there.`,
 	f.BoolVar(&o.holdOutFixes, "hold-out-fixes", false, "compare each satellite fix with what was known just before it")
 	f.BoolVar(&o.smooth, "smooth", false, "look back over each drive: what is known of each time given all of it, in smoothed.csv and smoothed.geojson")
 	f.BoolVar(&o.path, "path", false, "look back for the most probable path, in path.csv and path.geojson")
+	f.DurationVar(&o.lag, "lag", 0, "say of times now and then what was known so long after them, in lagged.csv and lagged.geojson; at most 1h")
 	f.StringSliceVar(&o.also, "also", nil, "write tracks in these forms, too: gpx, parquet")
 	f.StringArrayVar(&o.beliefAt, "belief-at", nil, "write the whole belief at this time, RFC 3339 or seconds after the first measurement, for a GIS; repeat")
 	o.over.flags(c)
@@ -79,6 +81,9 @@ what is done; the same command goes on from there.`,
 func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
 	if o.maxCells < 1 {
 		return fmt.Errorf("--max-cells is %d: give a whole number, 1 or more", o.maxCells)
+	}
+	if o.lag < 0 || o.lag > time.Hour {
+		return fmt.Errorf("--lag is %v: give more than 0 and at most 1h, such as 10s", o.lag)
 	}
 	if err := o.checkStudies(); err != nil {
 		return err
@@ -155,7 +160,7 @@ func (o *replayOptions) job(maps map[string]*mapFile, paths []string) (*sweep.Jo
 	job := &sweep.Job{
 		HoldOut: o.holdOut, MaxCells: o.maxCells, Dir: o.dir, Parallel: o.parallel,
 		Again:         o.again || o.explain != "" || o.diagnose == diagnoseAlways,
-		EstimateTruth: o.estimateTruth, HoldOutFixes: o.holdOutFixes, Smooth: o.smooth, Path: o.path,
+		EstimateTruth: o.estimateTruth, HoldOutFixes: o.holdOutFixes, Smooth: o.smooth, Path: o.path, LagS: o.lag.Seconds(),
 		Version: versionText(), Program: programSHA256(), Command: append([]string{"leadline"}, withoutWhere(os.Args[1:])...),
 	}
 	if err := o.outputs(job); err != nil {

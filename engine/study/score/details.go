@@ -44,6 +44,8 @@ type Details struct {
 	// LookedBack is of the drive as it is known once it is over, where that was
 	// asked for.
 	LookedBack *LookedBack `json:"looked_back,omitempty"`
+	// Lagged is of what was known of each time a lag later, where that was asked for.
+	Lagged *Lagged `json:"lagged,omitempty"`
 	// Sensors say how the measurements of each sensor fell in what was expected.
 	Sensors []Innovation `json:"sensors"`
 }

@@ -23,6 +23,14 @@ type Hindsight struct {
 	FiguresAll
 }
 
+// Lagged are figures of what is known of times a lag ago, given all that was measured
+// until then: those without a suffix from its first located posterior on.
+type Lagged struct {
+	LagS       float64 `json:"lag_s"`
+	Posteriors int     `json:"posteriors"`
+	Hindsight
+}
+
 // Agreement compares what was known at each time with what is known of it later. If
 // the model is right and linear, the difference d of the means has the covariance
 // P - P', that of the filter less that of the smoother, so that d'(P - P')⁻¹d is 2 in

@@ -28,6 +28,7 @@ type Task struct {
 	Bytes int64
 
 	EstimateTruth, HoldOutFixes, Smooth, Path, GPX, Parquet bool
+	LagS                                                    float64
 	Beliefs                                                 []replay.Moment
 }
 
@@ -60,7 +61,7 @@ func (w *work) task() (*Task, error) {
 	j := w.job
 	return &Task{
 		Run: w.out.Run, Suite: yaml, Files: j.Dir != "", Bytes: w.unit.drive.Bytes,
-		EstimateTruth: j.EstimateTruth, HoldOutFixes: j.HoldOutFixes, Smooth: j.Smooth, Path: j.Path,
+		EstimateTruth: j.EstimateTruth, HoldOutFixes: j.HoldOutFixes, Smooth: j.Smooth, Path: j.Path, LagS: j.LagS,
 		GPX: j.GPX, Parquet: j.Parquet, Beliefs: j.Beliefs,
 	}, nil
 }
@@ -130,7 +131,7 @@ func (t *Task) Do(ctx context.Context, version, program, file string, m *Map, di
 	named.Path = t.Run.Map
 	j := &Job{
 		MaxCells: t.Run.MaxCells, TruthOffset: t.Run.TruthOffset, EstimateTruth: t.EstimateTruth, HoldOutFixes: t.HoldOutFixes,
-		Smooth: t.Smooth, Path: t.Path, GPX: t.GPX, Parquet: t.Parquet, Beliefs: t.Beliefs,
+		Smooth: t.Smooth, Path: t.Path, LagS: t.LagS, GPX: t.GPX, Parquet: t.Parquet, Beliefs: t.Beliefs,
 		Version: version, Program: program, Command: t.Run.Command, Meter: meter, Again: true,
 	}
 	if t.Files {

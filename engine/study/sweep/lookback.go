@@ -32,10 +32,18 @@ func (w *work) looksBack() bool { return w.job.Smooth || w.job.Path }
 
 // settled keeps events for looking back; nil has replays keep none.
 func (w *work) settled() func([]sensor.Event) {
-	if !w.looksBack() {
+	switch {
+	case w.lagging == nil && !w.looksBack():
 		return nil
+	case !w.looksBack():
+		return w.lagging.take
 	}
-	return func(events []sensor.Event) { w.back.events = append(w.back.events, events...) }
+	return func(events []sensor.Event) {
+		w.back.events = append(w.back.events, events...)
+		if w.lagging != nil {
+			w.lagging.take(events)
+		}
+	}
 }
 
 // lookBack runs the drive backward, writes what it finds, and scores it.

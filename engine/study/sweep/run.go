@@ -82,6 +82,8 @@ type work struct {
 	dir    string // being written
 	hash   string // of the posteriors
 	back   lookback
+
+	lagging *lagging // nil: nobody asks
 }
 
 func (w *work) do(ctx context.Context) error {
@@ -198,7 +200,7 @@ func (w *work) describe(driveSHA256 string) (results.Run, error) {
 		place(b.ID, b.Position())
 	}
 	key, err := json.Marshal([]any{
-		r.DriveSHA256, r.MapFingerprint, string(yaml), r.MaxCells, r.TruthOffset, j.EstimateTruth, j.HoldOutFixes, j.Beliefs, j.Smooth, j.Path,
+		r.DriveSHA256, r.MapFingerprint, string(yaml), r.MaxCells, r.TruthOffset, j.EstimateTruth, j.HoldOutFixes, j.Beliefs, j.Smooth, j.Path, j.LagS,
 		r.Version, r.Program, r.Architecture,
 	})
 	if err != nil {
@@ -311,9 +313,11 @@ func (w *work) begin() (err error) {
 	if w.sinks != nil {
 		w.sinks.drop()
 	}
-	w.back = lookback{}
-	w.sinks, err = newSinks(w)
-	return err
+	w.back, w.lagging = lookback{}, nil
+	if w.sinks, err = newSinks(w); err != nil {
+		return err
+	}
+	return w.lag()
 }
 
 // finish writes what sums a run up, and puts its folder in its place.
@@ -326,6 +330,10 @@ func (w *work) finish(ctx context.Context, res *replay.Result) (err error) {
 	case err != nil:
 		return err
 	}
+	lagged, err := w.lagging.end(w.job.LagS)
+	if err != nil {
+		return err
+	}
 	if err := w.sinks.close(); err != nil {
 		return err
 	}
@@ -333,7 +341,7 @@ func (w *work) finish(ctx context.Context, res *replay.Result) (err error) {
 	if err != nil {
 		return fmt.Errorf("%s: comparing with the truth: %w", w.unit.drive.Path, err)
 	}
-	s.Sensors, s.LookedBack = w.sinks.innovations.End(), back
+	s.Sensors, s.LookedBack, s.Lagged = w.sinks.innovations.End(), back, lagged
 	if w.job.HoldOutFixes {
 		s.HeldOutFixes = w.sinks.fixes.End()
 	}

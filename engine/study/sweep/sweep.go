@@ -66,6 +66,8 @@ type Job struct {
 	// Smooth and Path have each drive looked back over, and written as it is known
 	// then, and as its most probable path.
 	Smooth, Path bool
+	// LagS, above 0, has it written what was known of times so many seconds ago.
+	LagS float64
 
 	// GPX and Parquet have tracks written in these forms, too.
 	GPX, Parquet bool

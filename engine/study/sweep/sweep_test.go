@@ -122,7 +122,7 @@ func TestSameHoweverMany(t *testing.T) {
 	one, four, cut := filepath.Join(t.TempDir(), "a"), filepath.Join(t.TempDir(), "b"), filepath.Join(t.TempDir(), "c")
 	run := func(dir string, parallel int) (*Job, []*Outcome, *Summary) {
 		j := job(dir, drives...)
-		j.Parallel, j.Settings, j.HoldOut, j.Smooth, j.Path = parallel, settings, []string{"boat-2"}, true, true
+		j.Parallel, j.Settings, j.HoldOut, j.Smooth, j.Path, j.LagS = parallel, settings, []string{"boat-2"}, true, true, 1
 		out, sum := outcomes(t, j)
 		return j, out, sum
 	}
@@ -153,7 +153,7 @@ func TestSameHoweverMany(t *testing.T) {
 	same(t, "before and after resuming", before, after)
 
 	j := job(cut, drives...)
-	j.Parallel, j.Settings, j.HoldOut, j.Smooth, j.Path = 1, settings, []string{"boat-2"}, true, true
+	j.Parallel, j.Settings, j.HoldOut, j.Smooth, j.Path, j.LagS = 1, settings, []string{"boat-2"}, true, true, 1
 	ctx, cancel := context.WithCancel(context.Background())
 	defer cancel()
 	n := 0
