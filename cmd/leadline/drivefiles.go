@@ -34,6 +34,22 @@ func driveHeader(path string) (drivefile.Header, int64, error) {
 	return *rec.Header, info.Size(), nil
 }
 
+// vehicles refuses the traffic of a road, which has no one vehicle to position.
+func vehicles(h drivefile.Header, path string) error {
+	if h.Traffic {
+		return fmt.Errorf("%s is the traffic of a road, and of no one vehicle: follow it with `leadline traffic %s`", path, path)
+	}
+	return nil
+}
+
+// roads refuses the drive of a vehicle.
+func roads(h drivefile.Header, path string) error {
+	if !h.Traffic && (h.Map != "" || h.Start.SigmaM > 0 || len(h.Start.Area) > 0) {
+		return fmt.Errorf("%s is the drive of a vehicle, and no road's traffic: run it with `leadline replay %s`", path, path)
+	}
+	return nil
+}
+
 // openDrive opens a drive file.
 func openDrive(path string) (*os.File, *bufio.Reader, error) {
 	f, err := os.Open(path)

@@ -231,6 +231,9 @@ func (o *replayOptions) vary(job *sweep.Job) error {
 // drive looks at a drive file and opens its map.
 func (o *replayOptions) drive(maps map[string]*mapFile, opened map[string]*sweep.Map, path string) (*sweep.Drive, error) {
 	header, bytes, err := driveHeader(path)
+	if err == nil {
+		err = vehicles(header, path)
+	}
 	if err != nil {
 		return nil, err
 	}

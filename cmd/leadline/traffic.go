@@ -81,6 +81,9 @@ func followTraffic(c *cobra.Command, o *trafficOptions, path string) error {
 	defer file.Close()
 	r := drivefile.NewReader(b, path)
 	header, err := r.Read()
+	if err == nil {
+		err = roads(*header.Header, path)
+	}
 	if err != nil {
 		return err
 	}

@@ -56,4 +56,16 @@ func TestTraffic(t *testing.T) {
 			t.Errorf("%v: status %d: %s", c.args, status, errs.String())
 		}
 	}
+	// The wrong one of the two commands says which is the right one.
+	const vehicle = "../../docs/first.drive.jsonl"
+	for _, c := range [][]string{
+		{"leadline traffic " + drive, "replay", drive},
+		{"leadline traffic " + drive, "tune", drive, "--suite", suite, "--figure", "vehicle.lateral_sigma_m=0.1:1"},
+		{"leadline replay " + vehicle, "traffic", vehicle, "--suite", suite},
+	} {
+		errs.Reset()
+		if status := run(c[1:], &out, &errs); status != exitBad || !strings.Contains(errs.String(), c[0]) || strings.Count(errs.String(), "\n") != 1 {
+			t.Errorf("%v: status %d: %s", c, status, errs.String())
+		}
+	}
 }

@@ -123,6 +123,9 @@ func (o *tuneOptions) open(paths []string) (drives, held []tune.Drive, end func(
 	}
 	for i, path := range paths {
 		d, err := readDrive(path)
+		if err == nil {
+			err = vehicles(d.Header, path)
+		}
 		if err != nil {
 			return nil, nil, end, err
 		}

@@ -232,6 +232,7 @@ func (o *owner) closing() *leadlinev1.Closed {
 	if r, ok := o.sess.(*roadSession); ok {
 		c.Traffic, c.PosteriorSha256 = o.picture(r, briefly), ""
 		o.heard.tell()
+		o.over.tell()
 	}
 	return c
 }

@@ -48,21 +48,21 @@ type owner struct {
 	silentSince time.Time
 
 	// Of the goroutine.
-	sess       Session
-	beside     *searches
-	rec        *recorder
-	sequence   uint64 // highest batch that is in
-	submitted  uint64 // and that is on its way there
-	malformed  uint64 // measurements refused before they reached the session
-	posteriors uint64
-	ended      bool
-	at         *attachment // the stream that feeds it, or nil
-	out        []item      // replies that wait; no batch is taken while any do
-	log        driveLog
-	extras     *extras // for those who follow
-	trail      trail
-	alarms     map[alarmKey]uint64 // on record, with their numbers
-	heard      broadcast           // of a road: there is news
+	sess        Session
+	beside      *searches
+	rec         *recorder
+	sequence    uint64 // highest batch that is in
+	submitted   uint64 // and that is on its way there
+	malformed   uint64 // measurements refused before they reached the session
+	posteriors  uint64
+	ended       bool
+	at          *attachment // the stream that feeds it, or nil
+	out         []item      // replies that wait; no batch is taken while any do
+	log         driveLog
+	extras      *extras // for those who follow
+	trail       trail
+	alarms      map[alarmKey]uint64 // on record, with their numbers
+	heard, over broadcast           // of a road: there is news; its drive has ended
 }
 
 // attachment joins a stream to an owner.

@@ -182,7 +182,7 @@ func (s *Server) FollowTraffic(req *leadlinev1.FollowTrafficRequest, stream grpc
 	}
 	interval := time.Duration(math.Ceil(req.GetMinIntervalS() * 1e9))
 	for first := true; ; first = false {
-		news := o.heard.wait()
+		news, ended := o.heard.wait(), o.over.wait()
 		p, err := o.pictureOf(ctx, r, q)
 		if err != nil {
 			return err
@@ -195,13 +195,16 @@ func (s *Server) FollowTraffic(req *leadlinev1.FollowTrafficRequest, stream grpc
 			return err
 		}
 		pause := time.NewTimer(interval)
-		over := pause.C
-		for over != nil || news != nil {
+		due := pause.C
+		for due != nil || news != nil {
 			select {
-			case <-over:
-				over = nil
+			case <-due:
+				due = nil
 			case <-news:
 				news = nil
+			case <-ended: // which nobody waits an interval for
+				pause.Stop()
+				due, news = nil, nil
 			case <-o.dead:
 				pause.Stop()
 				return o.err
