@@ -5,6 +5,8 @@ import (
 	"math/rand/v2"
 	"testing"
 
+	"google.golang.org/protobuf/proto"
+
 	"leadline/engine/filter"
 	"leadline/engine/filter/filtertest"
 	"leadline/engine/geo"
@@ -123,7 +125,7 @@ func TestBeliefOnAPlane(t *testing.T) {
 		var c filter.Cloud
 		s.ReadBelief(&c)
 		level, l := s.Cells()
-		m := beliefMessage(&c, space, level, l)
+		m := usual.of(&c, space, level, l)
 		if m.GetGrid().GetCellM() != l.SpacingM || m.GetStretches() != nil {
 			t.Fatalf("%s: cells of %v m, want %v", what, m.GetGrid().GetCellM(), l.SpacingM)
 		}
@@ -158,9 +160,9 @@ func TestBeliefWide(t *testing.T) {
 			c.East, c.North = append(c.East, l.Origin.E+col*l.SpacingM), append(c.North, l.Origin.N+row*l.SpacingM)
 			c.Mass = append(c.Mass, 1.0/3000)
 		}
-		m := beliefMessage(&c, space, 0, l)
+		m := usual.of(&c, space, 0, l)
 		g := m.GetGrid()
-		if n := g.GetColumns() * g.GetRows(); n > maxGridCells || n < maxGridCells/8 || g.GetCellM() != 40 {
+		if n := g.GetColumns() * g.GetRows(); int(n) > usual.gridCells || int(n) < usual.gridCells/8 || g.GetCellM() != 40 {
 			t.Errorf("%d × %d cells of %v m", g.GetColumns(), g.GetRows(), g.GetCellM())
 		}
 		name := func(p geo.Point) [2]int {
@@ -201,10 +203,10 @@ func TestBeliefOnRoads(t *testing.T) {
 		for i := range c.Mass {
 			c.Mass[i] /= total
 		}
-		m := beliefMessage(&c, road, 0, filter.Lattice{})
+		m := usual.of(&c, road, 0, filter.Lattice{})
 		cells := decode(t, m)
 		width := m.GetStretches()[0].GetCellM()
-		if n < 100000 && width > 1 || n == 100000 && (width < 4 || len(cells) > maxStretchCells) {
+		if n < 100000 && width > 1 || n == 100000 && (width < 4 || len(cells) > usual.roadCells) {
 			t.Errorf("%d entries: %d cells of %v m", n, len(cells), width)
 		}
 		// Names by the place: which chart, and how far along. The charts lie
@@ -245,6 +247,92 @@ func TestBeliefOnRoads(t *testing.T) {
 	}
 }
 
+// unpack makes the plain message of a packed one, as the .proto file says.
+func unpack(m *leadlinev1.Belief, frame geo.Frame) *leadlinev1.Belief {
+	m = proto.CloneOf(m)
+	if g := m.GetGrid(); g != nil {
+		mass := make([]byte, g.GetColumns()*g.GetRows())
+		told, at := g.GetMass(), 0
+		for i := 0; i+1 < len(g.GetRuns()); i += 2 {
+			at += int(g.GetRuns()[i])
+			n := copy(mass[at:at+int(g.GetRuns()[i+1])], told)
+			told, at = told[n:], at+n
+		}
+		g.Mass, g.Runs = mass, nil
+	}
+	for _, s := range m.GetStretches() {
+		var e, n int32
+		for i := range s.GetEastCm() {
+			e, n = e+s.GetEastCm()[i], n+s.GetNorthCm()[i]
+			s.Middles = append(s.Middles, wire.FromPosition(frame.Inverse(geo.Point{E: float64(e) / 100, N: float64(n) / 100})))
+		}
+		s.EastCm, s.NorthCm = nil, nil
+	}
+	return m
+}
+
+// TestBeliefPacked proves that a packed belief is the plain one, to a centimetre
+// on roads; that runs of zeros of any length come through; and how large the
+// greatest are.
+func TestBeliefPacked(t *testing.T) {
+	rng := rand.New(rand.NewPCG(3, 3))
+	space := plane.Open(geo.FromDegrees(20, 50), 100e3, 20)
+	for _, n := range []int{1, 2, 5, 60, 2000} {
+		var c filter.Cloud
+		for range n {
+			c.East, c.North = append(c.East, 5*math.Round(12*rng.NormFloat64())), append(c.North, 5*math.Round(12*rng.NormFloat64()))
+			c.Mass = append(c.Mass, math.Exp(5*rng.NormFloat64()))
+		}
+		l := filter.Lattice{SpacingM: 5}
+		want := usual.of(&c, space, 0, l)
+		packed := picture{gridCells: usual.gridCells, packed: true}.of(&c, space, 0, l)
+		if got := unpack(packed, space.Frame()); !proto.Equal(got, want) {
+			t.Fatalf("%d entries: packed\n%v\nplain\n%v", n, got, want)
+		}
+	}
+	most := picture{gridCells: maxBeliefCells, roadCells: maxRoadCells, packed: true}
+	blob := blob(1000)
+	b := most.of(&blob, space, 0, filter.Lattice{SpacingM: 5})
+	if g := b.GetGrid(); g.GetColumns() < 990 || g.GetRows() < 990 {
+		t.Errorf("of 1000 × 1000 cells there are %d × %d", g.GetColumns(), g.GetRows())
+	}
+	t.Logf("1000 × 1000 cells of a plane: %d bytes", proto.Size(b))
+	road := filtertest.NewRoad(1, []filtertest.Course{{Arcs: []filtertest.Arc{{LengthM: 30000, Curvature: 1e-4}}}}, [][]filtertest.Link{nil})
+	var r filter.Cloud
+	for i := range 30000 {
+		r.Chart, r.AlongM, r.Mass = append(r.Chart, 0), append(r.AlongM, float64(i)+0.5), append(r.Mass, rng.Float64()/30000)
+	}
+	b = most.of(&r, road, 0, filter.Lattice{})
+	want := picture{roadCells: maxRoadCells}.of(&r, road, 0, filter.Lattice{})
+	told := 0
+	for i, s := range unpack(b, road.Frame()).GetStretches() {
+		for j, at := range s.GetMiddles() {
+			p, err := wire.Position(at)
+			q, err2 := wire.Position(want.GetStretches()[i].GetMiddles()[j])
+			if x, y := road.Frame().Forward(p), road.Frame().Forward(q); err != nil || err2 != nil || math.Hypot(x.E-y.E, x.N-y.N) > 0.008 {
+				t.Fatalf("cell %d is at %v, want %v", j, x, y)
+			}
+			told++
+		}
+	}
+	if told != 30000 {
+		t.Errorf("%d cells of 30000", told)
+	}
+	t.Logf("30000 cells of roads: %d bytes, %d plain", proto.Size(b), proto.Size(want))
+}
+
+// blob is a belief that fills n by n cells of 5 m, thinly at its edges.
+func blob(n int) (c filter.Cloud) {
+	for row := range n {
+		for col := range n {
+			d := math.Hypot(float64(row-n/2), float64(col-n/2)) / float64(n) * 10
+			c.East, c.North = append(c.East, 5*float64(col)), append(c.North, 5*float64(row))
+			c.Mass = append(c.Mass, math.Exp(-d*d/2))
+		}
+	}
+	return c
+}
+
 // TestMassByte proves the scale of the bytes at its ends.
 func TestMassByte(t *testing.T) {
 	for _, c := range []struct {
@@ -261,17 +349,16 @@ func TestMassByte(t *testing.T) {
 func BenchmarkBelief(b *testing.B) {
 	space := plane.Open(middle, 100e3, 20)
 	l := filter.Lattice{SpacingM: 5}
-	var c filter.Cloud
-	for row := range 400 {
-		for col := range 400 {
-			d := math.Hypot(float64(row-200), float64(col-200)) / 40
-			c.East, c.North = append(c.East, 5*float64(col)), append(c.North, 5*float64(row))
-			c.Mass = append(c.Mass, math.Exp(-d*d/2)/(2*math.Pi*1600))
-		}
-	}
+	c := blob(400)
 	b.Run("plane/cells=160k", func(b *testing.B) {
 		for b.Loop() {
-			beliefMessage(&c, space, 0, l)
+			usual.of(&c, space, 0, l)
+		}
+	})
+	million := blob(1000)
+	b.Run("plane/cells=1M", func(b *testing.B) {
+		for b.Loop() {
+			picture{gridCells: maxBeliefCells, packed: true}.of(&million, space, 0, l)
 		}
 	})
 	road := filtertest.NewRoad(1, []filtertest.Course{{Arcs: []filtertest.Arc{{LengthM: 60000}}}}, [][]filtertest.Link{nil})
@@ -281,7 +368,7 @@ func BenchmarkBelief(b *testing.B) {
 	}
 	b.Run("roads/cells=60k", func(b *testing.B) {
 		for b.Loop() {
-			beliefMessage(&r, road, 0, filter.Lattice{})
+			usual.of(&r, road, 0, filter.Lattice{})
 		}
 	})
 }

@@ -21,11 +21,21 @@ type BeliefReader interface {
 	Cells() (level int, l filter.Lattice)
 }
 
-// Bounds of a belief's message: 64 KiB of a grid; on roads each cell brings
-// its place, some 25 bytes.
+// picture is what is wanted of a belief.
+type picture struct {
+	gridCells, roadCells int  // at most
+	packed               bool // without what is 0, and places as differences
+}
+
+// usual is the picture for those who do not say: 64 KiB of a grid; on roads each
+// cell brings its place, some 25 bytes.
+var usual = picture{gridCells: 1 << 16, roadCells: 4096}
+
+// What may be asked for: 1 MiB of a grid; of roads 5 bytes a cell of a metre, and
+// more cells are no finer than the pixels of a screen.
 const (
-	maxGridCells    = 1 << 16
-	maxStretchCells = 4096
+	maxBeliefCells = 1 << 20
+	maxRoadCells   = 1 << 15
 )
 
 // massStep is how far apart the masses of neighbouring bytes are, as a
@@ -41,17 +51,17 @@ func massByte(mass, peak float64) byte {
 	return byte(min(max(b, 0), 255))
 }
 
-// beliefMessage makes a picture of a belief.
-func beliefMessage(cloud *filter.Cloud, space filter.Space, level int, l filter.Lattice) *leadlinev1.Belief {
+// of makes a picture of a belief.
+func (pic picture) of(cloud *filter.Cloud, space filter.Space, level int, l filter.Lattice) *leadlinev1.Belief {
 	if lines, ok := space.(filter.LineSpace); ok {
-		return stretches(cloud, lines, level)
+		return pic.stretches(cloud, lines, level)
 	}
-	return grid(cloud, space.Frame(), l)
+	return pic.grid(cloud, space.Frame(), l)
 }
 
 // grid makes the picture of a belief on a plane. Cells are put together by
 // twos, fours and so on each way, until their rectangle is small enough.
-func grid(c *filter.Cloud, frame geo.Frame, l filter.Lattice) *leadlinev1.Belief {
+func (pic picture) grid(c *filter.Cloud, frame geo.Frame, l filter.Lattice) *leadlinev1.Belief {
 	cell := func(v, origin float64) int { return int(math.Floor((v-origin)/l.SpacingM + 0.5)) }
 	// What is this light cannot be told even if a cell holds a hundred of it;
 	// it must not widen the rectangle.
@@ -69,7 +79,7 @@ func grid(c *filter.Cloud, frame geo.Frame, l filter.Lattice) *leadlinev1.Belief
 		west, east, south, north = min(west, col), max(east, col), min(south, row), max(north, row)
 	}
 	by := 1
-	for (floorDiv(east, by)-floorDiv(west, by)+1)*(floorDiv(north, by)-floorDiv(south, by)+1) > maxGridCells {
+	for (floorDiv(east, by)-floorDiv(west, by)+1)*(floorDiv(north, by)-floorDiv(south, by)+1) > pic.gridCells {
 		by *= 2
 	}
 	west, east, south, north = floorDiv(west, by), floorDiv(east, by), floorDiv(south, by), floorDiv(north, by)
@@ -100,8 +110,44 @@ func grid(c *filter.Cloud, frame geo.Frame, l filter.Lattice) *leadlinev1.Belief
 	}
 	g.First, g.FirstLast = corner(west, south), corner(east, south)
 	g.LastFirst, g.Last = corner(west, north), corner(east, north)
+	if pic.packed {
+		g.Runs, g.Mass = withoutZeros(g.Mass)
+	}
 	out.Grid = g
 	return out
+}
+
+// withoutZeros takes the longer runs of zeros out of a grid's bytes, in place,
+// and returns how many are out and in, by turns.
+func withoutZeros(mass []byte) (runs []uint32, told []byte) {
+	const worth = 4 // zeros cost two numbers
+	told = mass[:0]
+	for i := 0; i < len(mass); {
+		from := i
+		for i < len(mass) && mass[i] == 0 {
+			i++
+		}
+		if i == len(mass) {
+			break
+		}
+		out := i - from
+		from = i
+		for zeros := 0; i < len(mass) && zeros < worth; i++ {
+			if zeros++; mass[i] != 0 {
+				zeros = 0
+			}
+		}
+		for mass[i-1] == 0 {
+			i--
+		}
+		runs = append(runs, uint32(out), uint32(i-from))
+		if from == len(told) { // nothing has been left out before
+			told = mass[:i]
+		} else {
+			told = append(told, mass[from:i]...)
+		}
+	}
+	return runs, told
 }
 
 // floorDiv divides, rounding down.
@@ -122,13 +168,13 @@ type roadCell struct {
 
 // stretches makes the picture of a belief on roads: of the heaviest cells, at
 // a level that has few enough of them if there is one.
-func stretches(c *filter.Cloud, space filter.LineSpace, level int) *leadlinev1.Belief {
+func (pic picture) stretches(c *filter.Cloud, space filter.LineSpace, level int) *leadlinev1.Belief {
 	out := &leadlinev1.Belief{}
 	var cells []roadCell
 	var least byte
 	for ; ; level++ {
 		cells, out.PeakMass = roadCells(cells[:0], c, space.Lines(level))
-		if least = heaviest(cells); least == 1 || level == space.Levels()-1 {
+		if least = heaviest(cells, pic.roadCells); least == 1 || level == space.Levels()-1 {
 			break
 		}
 	}
@@ -141,7 +187,7 @@ func stretches(c *filter.Cloud, space filter.LineSpace, level int) *leadlinev1.B
 		told   int
 	)
 	for _, r := range cells {
-		if r.told < least || told == maxStretchCells {
+		if r.told < least || told == pic.roadCells {
 			out.Rest += r.mass
 			continue
 		}
@@ -161,8 +207,15 @@ func stretches(c *filter.Cloud, space filter.LineSpace, level int) *leadlinev1.B
 	frame := space.Frame()
 	i := 0
 	for _, s := range out.Stretches {
+		var before [2]int32
 		for range s.Mass {
-			s.Middles = append(s.Middles, wire.FromPosition(frame.Inverse(geo.Point{E: at.East[i], N: at.North[i]})))
+			if pic.packed {
+				here := [2]int32{int32(math.Round(100 * at.East[i])), int32(math.Round(100 * at.North[i]))}
+				s.EastCm, s.NorthCm = append(s.EastCm, here[0]-before[0]), append(s.NorthCm, here[1]-before[1])
+				before = here
+			} else {
+				s.Middles = append(s.Middles, wire.FromPosition(frame.Inverse(geo.Point{E: at.East[i], N: at.North[i]})))
+			}
 			i++
 		}
 	}
@@ -198,16 +251,16 @@ func roadCells(dst []roadCell, c *filter.Cloud, lines *filter.Lines) ([]roadCell
 	return dst, peak
 }
 
-// heaviest returns the least byte of which, with all above, no more than
-// maxStretchCells cells are told.
-func heaviest(cells []roadCell) byte {
+// heaviest returns the least byte of which, with all above, no more than so many
+// cells are told.
+func heaviest(cells []roadCell, most int) byte {
 	var count [256]int
 	for _, r := range cells {
 		count[r.told]++
 	}
 	total := 0
 	for b := 255; b > 0; b-- {
-		if total += count[b]; total > maxStretchCells {
+		if total += count[b]; total > most {
 			return byte(min(b+1, 255)) // of equals at the top, the first ones
 		}
 	}

@@ -29,7 +29,7 @@ var plain = map[string]any{
 	"lon": 5.0, "lat": 53.0, "east_north_m2": 0.0, "deg": 10.0, "pressure_hpa": 1000.0, "mistaken": 0.1,
 	"seconds": int64(began/1e9) + 3, "nanos": int32(0), "map": "sea", "vehicle": "v", "vehicles": "v",
 	"region_fractions": 0.5, "integrity_risk": 0.01, "depth_below_transducer_m": 20.0, "page_token": "", "resume_token": "",
-	"area_probability": 0.5, "predict_to_now": false, "ago_s": 0.5, "check": false, "replace": true, "status_changes_only": false,
+	"area_probability": 0.5, "predict_to_now": false, "ago_s": 0.5, "belief_cells": uint32(0), "check": false, "replace": true, "status_changes_only": false,
 	"traffic": false, "flow_s": 600.0, "road": "road", "detail": protoreflect.EnumNumber(leadlinev1.Detail_DETAIL_REGION), "sha256": strings.Repeat("0", 64),
 	"acknowledged": uint64(0), "route_file": []byte(`{"type":"LineString","coordinates":[[5,53],[5.01,53]]}`),
 }

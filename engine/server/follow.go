@@ -127,9 +127,17 @@ func (h *hub) newFollower(req *leadlinev1.FollowRequest) (*follower, error) {
 	case leadlinev1.Detail_DETAIL_REGION:
 		f.asking.fractions = []float64{defaultRegion}
 	case leadlinev1.Detail_DETAIL_BELIEF:
-		f.asking.belief = true
+		f.asking.belief = &usual
+		if n := req.GetBeliefCells(); n > maxBeliefCells {
+			return nil, badField("belief_cells", "follow: belief_cells %d: at most %d", n, maxBeliefCells)
+		} else if n > 0 {
+			f.asking.belief = &picture{gridCells: int(n), roadCells: min(int(n), maxRoadCells), packed: true}
+		}
 	default:
 		return nil, badField("detail", "follow: detail %d is none: give one of the four", req.GetDetail())
+	}
+	if req.GetBeliefCells() > 0 && f.asking.belief == nil {
+		return nil, badField("belief_cells", "follow: belief_cells without DETAIL_BELIEF: ask for that detail, or leave it out")
 	}
 	if fs := req.GetRegionFractions(); len(fs) > 0 {
 		if f.asking.fractions == nil {

@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"math"
+	"strings"
 	"sync"
 	"testing"
 	"time"
@@ -337,6 +338,13 @@ func TestManyFollowed(t *testing.T) {
 	followers.Wait()
 }
 
+func massOf(cells []told) (sum float64) {
+	for _, c := range cells {
+		sum += c.mass
+	}
+	return sum
+}
+
 // TestFollowMore proves that region, belief and area of an update are those of
 // its posterior.
 func TestFollowMore(t *testing.T) {
@@ -369,6 +377,20 @@ func TestFollowMore(t *testing.T) {
 	mean := m.GetPosterior().GetMean()
 	if math.Abs(sum+m.GetBelief().GetRest()-1) > quantum-1 || math.Abs(lon/sum-mean.GetLon()) > 1e-6 || math.Abs(lat/sum-mean.GetLat()) > 1e-6 {
 		t.Errorf("the belief's sum is %v, its mean %v, %v; want 1, %v", sum, lon/sum, lat/sum, mean)
+	}
+	// The same packed, of few cells; and too many, or without a belief.
+	st, cancelPacked := following(t, conn, &leadlinev1.FollowRequest{Detail: leadlinev1.Detail_DETAIL_BELIEF, BeliefCells: 16})
+	defer cancelPacked()
+	few := bring(t, st).GetBelief()
+	if g := few.GetGrid(); g.GetColumns()*g.GetRows() > 16 || len(g.GetRuns()) == 0 || math.Abs(1-few.GetRest()-massOf(decode(t, unpack(few, geo.Frame{})))) > quantum-1 {
+		t.Errorf("of 16 cells there are %v", few)
+	}
+	for cells, detail := range map[uint32]leadlinev1.Detail{maxBeliefCells + 1: leadlinev1.Detail_DETAIL_BELIEF, 100: leadlinev1.Detail_DETAIL_MODES} {
+		st, cancelBad := following(t, conn, &leadlinev1.FollowRequest{Detail: detail, BeliefCells: cells})
+		if _, err := st.Recv(); status.Code(err) != codes.InvalidArgument || !strings.Contains(err.Error(), "belief_cells") {
+			t.Errorf("%d cells, detail %v: %v", cells, detail, err)
+		}
+		cancelBad()
 	}
 	// Far away.
 	away := proto.CloneOf(square)

@@ -18,10 +18,10 @@ type want struct {
 	area       *area
 	onlyInside bool // nothing more if the vehicle is outside
 	fractions  []float64
-	belief     bool
+	belief     *picture
 }
 
-func (w want) anything() bool { return w.area != nil || w.fractions != nil || w.belief }
+func (w want) anything() bool { return w.area != nil || w.fractions != nil || w.belief != nil }
 
 // extra is what was asked for.
 type extra struct {
@@ -45,7 +45,7 @@ type extras struct {
 	of      *summary.Posterior // whose answers these are:
 	inside  map[[sha256.Size]byte]float64
 	regions map[float64]*leadlinev1.Region
-	belief  *leadlinev1.Belief
+	beliefs map[picture]*leadlinev1.Belief
 	cloud   filter.Cloud
 }
 
@@ -55,8 +55,8 @@ func newExtras(session Session, space filter.Space) *extras {
 
 func (x *extras) extra(p *summary.Posterior, w want) (*extra, error) {
 	if x.of != p {
-		x.of, x.belief = p, nil
-		x.inside, x.regions = map[[sha256.Size]byte]float64{}, map[float64]*leadlinev1.Region{}
+		x.of = p
+		x.inside, x.regions, x.beliefs = map[[sha256.Size]byte]float64{}, map[float64]*leadlinev1.Region{}, map[picture]*leadlinev1.Belief{}
 	}
 	asker, ok := x.session.(Asker)
 	if !ok && (w.area != nil || w.fractions != nil) {
@@ -91,17 +91,17 @@ func (x *extras) extra(p *summary.Posterior, w want) (*extra, error) {
 		}
 		out.regions = append(out.regions, m)
 	}
-	if w.belief {
-		if x.belief == nil {
+	if w.belief != nil {
+		if x.beliefs[*w.belief] == nil {
 			reader, ok := x.session.(BeliefReader)
 			if !ok {
 				return nil, refuse(leadlinev1.Reason_REASON_NOT_OFFERED, nil, "follow: this server tells no beliefs: ask for another detail")
 			}
 			reader.ReadBelief(&x.cloud)
 			level, lattice := reader.Cells()
-			x.belief = beliefMessage(&x.cloud, x.space, level, lattice)
+			x.beliefs[*w.belief] = w.belief.of(&x.cloud, x.space, level, lattice)
 		}
-		out.belief = x.belief
+		out.belief = x.beliefs[*w.belief]
 	}
 	return out, nil
 }

@@ -10,9 +10,11 @@ import { figure, length, percent, place, readPlace, type CoordinateForm } from "
 import { ground } from "./ground";
 import { chosen, chosenKnown, close as latest } from "./live";
 import { circle } from "./paintall";
-import { close, closed, corners, forgetArea, spot, spotRadiusM, tool } from "./pointing";
+import { find, middle, named, places } from "./places";
+import { asksFor, close, closed, corners, forgetArea, spot, spotRadiusM, tool } from "./pointing";
 import type { LonLat } from "./project";
 import { who } from "./settings";
+import { lookAt } from "./stage";
 
 const risk = signal(""); // as chosen; empty is the suite's
 const form = signal<CoordinateForm>("decimal");
@@ -129,19 +131,31 @@ function Inside({ p }: { p: Posterior }) {
           e.preventDefault();
           const data = new FormData(e.currentTarget);
           const q = readPlace(data.get("place") as string);
-          if (!q) {
-            document.getElementById("place-trouble")!.textContent = "That is no place: type latitude, longitude, such as 45.00006, -30.0, or 45° 00.004′ N 030° 00.000′ W.";
+          const known = q ? undefined : find(data.get("place") as string);
+          if (!q && !known) {
+            document.getElementById("place-trouble")!.textContent = `That is no place: type latitude, longitude, such as 45.00006, -30.0, or 45° 00.004′ N 030° 00.000′ W${places.value ? `, or the name of one of the places of ${places.value.file}` : ""}.`;
             return;
           }
           document.getElementById("place-trouble")!.textContent = "";
           forgetArea();
-          spot.value = q;
+          spot.value = undefined;
+          if (known?.areas.length) {
+            corners.value = known.areas[0][0].slice(1);
+            closed.value = true;
+          } else spot.value = q ?? middle(known!);
+          asksFor.value = known?.name ?? "";
+          lookAt.value = q ?? middle(known!);
         }}
       >
         <label>
-          Place <input name="place" defaultValue={text.value} key={text.value} placeholder="latitude, longitude" aria-describedby="place-trouble" size={24} />
+          Place <input name="place" defaultValue={text.value} key={text.value} placeholder={named.value.length ? "name, or latitude, longitude" : "latitude, longitude"} aria-describedby="place-trouble" list="places" autocomplete="off" size={24} />
         </label>
         <button>Ask</button>
+        <datalist id="places">
+          {[...new Set(named.value.map((p) => p.name))].map((n) => (
+            <option key={n} value={n} />
+          ))}
+        </datalist>
         <span id="place-trouble" role="alert" class="bad">{trouble.value}</span>
       </form>
       {!closed.value && (
@@ -153,7 +167,7 @@ function Inside({ p }: { p: Posterior }) {
       <p class="answer" role="status" id="inside-answer">
         {ring && a.inside !== undefined ? (
           <>
-            <b>{percent(a.inside)}</b> {closed.value ? "inside the area" : `within ${length(spotRadiusM.value)} of the place`}
+            <b>{percent(a.inside)}</b> {closed.value ? `inside ${asksFor.value || "the area"}` : `within ${length(spotRadiusM.value)} of ${asksFor.value || "the place"}`}
           </>
         ) : ring ? (
           a.trouble || "Asking."

@@ -53,5 +53,5 @@ export function ground(t: number, below: boolean, dark: boolean): RGB {
 /** What is drawn on the map beside belief and ground. */
 export const ink = (dark: boolean) =>
   dark
-    ? { paper: "#15191d", road: "#56606a", casing: "#0c0f12", tunnel: "#3f4850", name: "#c3ccd4", halo: "#15191d", track: "#8fb4ff", mark: "#ffffff", fix: "#5fd38d", area: "#ffd24a" }
-    : { paper: "#f6f4ef", road: "#ffffff", casing: "#a29f96", tunnel: "#d8d4ca", name: "#33373b", halo: "#f6f4ef", track: "#2456c9", mark: "#101418", fix: "#0a6b3a", area: "#8a5a00" };
+    ? { paper: "#15191d", road: "#56606a", casing: "#0c0f12", tunnel: "#3f4850", name: "#c3ccd4", halo: "#15191d", track: "#8fb4ff", mark: "#ffffff", fix: "#5fd38d", area: "#ffd24a", place: "#d9c9a3" }
+    : { paper: "#f6f4ef", road: "#ffffff", casing: "#a29f96", tunnel: "#d8d4ca", name: "#33373b", halo: "#f6f4ef", track: "#2456c9", mark: "#101418", fix: "#0a6b3a", area: "#8a5a00", place: "#5a4a12" };

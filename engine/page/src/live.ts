@@ -164,6 +164,9 @@ export function choose(name: string) {
   followClosely();
 }
 
+/** As many as can be drawn at once. */
+const beliefCells = 1 << 20;
+
 const pastMost = 2000;
 
 /** Adds a point, in order; one of its time is replaced. */
@@ -198,7 +201,7 @@ function followClosely() {
   let drive = "";
   let remembers = false;
   leave = follow(
-    { vehicles: [name], detail: Detail.BELIEF, minIntervalS: 0.1 },
+    { vehicles: [name], detail: Detail.BELIEF, minIntervalS: 0.1, beliefCells },
     {
       link: (l) => (closeTrouble.value = l.why),
       begins: () => (remembers = false),

@@ -145,6 +145,6 @@ route();
 start();
 render(<Page />, document.body);
 
-export { drawBelief, placeBelief } from "./paint";
+export { drawBelief, placeBelief, readBelief } from "./paintbelief";
 export { took } from "./mapview";
 export { Frame, utm } from "./project";

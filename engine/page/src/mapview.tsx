@@ -6,7 +6,10 @@ import { figure, length, percent } from "./format";
 import { ground, groundTrouble, refine, type Box, type Ground } from "./ground";
 import { chosen, chosenKnown, close as latest, fix, past } from "./live";
 import { beginTop } from "./paintall";
-import { begin, boxOf, drawGround, placeBelief, toEN, type Placed, type View } from "./paint";
+import { begin, boxOf, drawGround, toEN, type View } from "./paint";
+import { leftOut, placeBelief, type Placed } from "./paintbelief";
+import { PlacesButton } from "./placesview";
+import { places, placesHidden, takePlaces } from "./places";
 import { close, closed, corners, point, spot, tool } from "./pointing";
 import type { EN, LonLat } from "./project";
 import { dark } from "./settings";
@@ -76,7 +79,7 @@ function draws(run: () => void) {
   let asked = 0;
   const off = effect(() => {
     // Everything that is drawn is read here, so that the effect runs again.
-    void [view.value, under.value, latest.value, past.value, fix.value, dark.value, spot.value, corners.value, closed.value, current.value, stage.value, lookAt.value];
+    void [view.value, under.value, latest.value, past.value, fix.value, dark.value, spot.value, corners.value, closed.value, current.value, stage.value, lookAt.value, places.value, placesHidden.value];
     if (!asked) asked = requestAnimationFrame(() => ((asked = 0), run()));
   });
   return () => {
@@ -114,6 +117,7 @@ export function MapView() {
     });
     sized.observe(box.current!);
     let lastGround = "";
+    let lastPlaces: unknown;
     let wait: ReturnType<typeof setTimeout> | undefined;
     const stop = draws(() => {
       const [g, p, s] = [under.peek(), current.peek(), stage.peek()];
@@ -131,23 +135,22 @@ export function MapView() {
           along.value = true;
           fit(g, at, p!.radii?.radius95M ?? 1000);
         });
-      } else if (s) {
-        const go = lookAt.peek();
-        if (go) {
-          batch(() => {
-            lookAt.value = undefined;
-            view.value = { ...view.peek(), ...g.frame.forward(go) };
-          });
-        }
-      } else if (along.peek()) {
+      } else if (lookAt.peek()) {
+        const go = lookAt.peek()!;
+        batch(() => {
+          lookAt.value = undefined;
+          along.value = false;
+          view.value = { ...view.peek(), ...g.frame.forward(go) };
+        });
+      } else if (!s && along.peek()) {
         const v = view.peek();
         // It moves on when the vehicle has left the middle third.
         if (Math.abs(at.e - v.e) > (v.width * v.mPerPx) / 6 || Math.abs(at.n - v.n) > (v.height * v.mPerPx) / 6) view.value = { ...v, e: at.e, n: at.n };
       }
       const v = view.peek();
-      const key = `${JSON.stringify(v)}${dark.peek()}${g.fingerprint}${g.fine?.drawing.detailM}${JSON.stringify(g.fine?.box)}`;
-      if (key !== lastGround) {
-        lastGround = key;
+      const key = `${JSON.stringify(v)}${dark.peek()}${g.fingerprint}${g.fine?.drawing.detailM}${JSON.stringify(g.fine?.box)}${placesHidden.peek()}`;
+      if (key !== lastGround || places.peek() !== lastPlaces) {
+        [lastGround, lastPlaces] = [key, places.peek()];
         drawGround(low.current!, v, g, dark.peek());
         clearTimeout(wait);
         wait = setTimeout(() => void refine(g.map, boxOf(v), v.mPerPx * 0.7), 200);
@@ -216,7 +219,7 @@ export function MapView() {
   const trouble = groundTrouble.value[mapName.value ?? ""];
   const drawingIt = tool.value !== "none";
   return (
-    <section class="map" aria-label="Map">
+    <section class="map" aria-label="Map" onDragOver={(e) => e.preventDefault()} onDrop={(e) => (e.preventDefault(), void takePlaces(e.dataTransfer?.files[0]))}>
       <div
         ref={box}
         class={`ground ${drawingIt ? "pointing" : ""}`}
@@ -255,6 +258,7 @@ export function MapView() {
             >
               Go along
             </button>}
+            <PlacesButton />
           </div>
           <Legend g={g} />
         </>
@@ -297,6 +301,7 @@ function Legend({ g }: { g: Ground }) {
             <span>{share(density)}</span>
           </div>
           <div>probability per {per}</div>
+          {leftOut(b) >= 0.001 && <div>{percent(leftOut(b))} too thin to be drawn</div>}
         </div>
       )}
       {r && (
@@ -310,6 +315,7 @@ function Legend({ g }: { g: Ground }) {
         </div>
       )}
       {stage.value?.legend}
+      {places.value && !placesHidden.value && <div><i class="sign own" /> places of {places.value.file}</div>}
       {p && (
         <ul>
           <li><i class="sign circle" /> 95 % circle{radiiHold(p) ? "" : ", if not lost"}</li>

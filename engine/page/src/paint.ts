@@ -1,9 +1,10 @@
 // Drawing on a canvas, in the metres of a map's frame.
-import type { Belief } from "../../client/web/leadline/v1/belief_pb.js";
 import type { Relief } from "../../client/web/leadline/v1/draw_pb.js";
-import { beliefScale, binOf, bins, css, ground as groundColour, ink } from "./colour";
+import { ground as groundColour, ink } from "./colour";
 import type { Box, Ground, Sheet } from "./ground";
-import type { EN, Frame } from "./project";
+import { namePlaces, drawPlaces } from "./paintplaces";
+import { layPlaces } from "./places";
+import type { EN } from "./project";
 
 /** Where the canvas looks: its middle, the metres of a pixel, its size in pixels. */
 export type View = { e: number; n: number; mPerPx: number; width: number; height: number };
@@ -15,7 +16,7 @@ export const boxOf = (v: View): Box => {
   return { west: v.e - w, east: v.e + w, south: v.n - h, north: v.n + h };
 };
 
-type Ctx = CanvasRenderingContext2D;
+export type Ctx = CanvasRenderingContext2D;
 
 /** Sets a canvas up for a view, cleared, in pixels of the page. */
 export function begin(canvas: HTMLCanvasElement, v: View): Ctx {
@@ -29,7 +30,7 @@ export function begin(canvas: HTMLCanvasElement, v: View): Ctx {
 }
 
 /** Draws in metres, north up, around the middle of a view. */
-function metres(ctx: Ctx, v: View, draw: () => void) {
+export function metres(ctx: Ctx, v: View, draw: () => void) {
   ctx.save();
   ctx.translate(v.width / 2, v.height / 2);
   ctx.scale(1 / v.mPerPx, -1 / v.mPerPx);
@@ -69,7 +70,10 @@ function reliefPicture(r: Relief, low: number, high: number, dark: boolean): HTM
 
 const widths = [0, 3, 4.5, 6]; // of a road by weight, px
 
-/** Draws the ground: relief, roads, names. */
+/** Where a name is written, px: its middle, and how far it reaches. */
+export type Taken = { x: number; y: number; r: number };
+
+/** Draws the ground: relief, roads, places, names. */
 export function drawGround(canvas: HTMLCanvasElement, v: View, g: Ground, dark: boolean) {
   const ctx = begin(canvas, v);
   const colours = ink(dark);
@@ -100,7 +104,11 @@ export function drawGround(canvas: HTMLCanvasElement, v: View, g: Ground, dark: 
       }
     }
   });
-  drawNames(ctx, v, s, dark);
+  const laid = layPlaces(g.frame);
+  drawPlaces(ctx, v, laid, dark);
+  const taken: Taken[] = [];
+  namePlaces(ctx, v, laid, dark, taken);
+  drawNames(ctx, v, s, dark, taken);
 }
 
 function bestSheet(g: Ground, v: View): Sheet {
@@ -110,7 +118,7 @@ function bestSheet(g: Ground, v: View): Sheet {
 }
 
 /** Writes each road's name once, along its longest straight part in view, where there is room. */
-function drawNames(ctx: Ctx, v: View, s: Sheet, dark: boolean) {
+function drawNames(ctx: Ctx, v: View, s: Sheet, dark: boolean, taken: Taken[]) {
   const longest = new Map<string, { px: number; x: number; y: number; angle: number; weight: number }>();
   for (const l of s.lines) {
     if (!l.name) continue;
@@ -129,7 +137,7 @@ function drawNames(ctx: Ctx, v: View, s: Sheet, dark: boolean) {
   ctx.textAlign = "center";
   ctx.textBaseline = "middle";
   ctx.lineJoin = "round";
-  const taken: { x: number; y: number; r: number }[] = [];
+  let written = 0;
   for (const [name, at] of [...longest].sort((a, b) => b[1].weight - a[1].weight || b[1].px - a[1].px)) {
     const text = name.length > 40 ? name.slice(0, 39) + "…" : name;
     const w = ctx.measureText(text).width;
@@ -144,83 +152,8 @@ function drawNames(ctx: Ctx, v: View, s: Sheet, dark: boolean) {
     ctx.fillStyle = ink(dark).name;
     ctx.fillText(text, 0, -9);
     ctx.restore();
-    if (taken.length >= 60) return;
+    if (++written >= 60) return;
   }
-}
-
-/** A belief in a frame: what does not depend on the view. */
-export type Placed = { cells: Path2D[]; grid?: { picture: HTMLCanvasElement; west: number; south: number; width: number; height: number; cellM: number } };
-
-/** Places a belief in a frame. */
-export function placeBelief(b: Belief, frame: Frame, dark: boolean): Placed {
-  const out: Placed = { cells: [] };
-  const scale = beliefScale(dark);
-  if (b.grid) {
-    const g = b.grid;
-    const table = new Uint8ClampedArray(4 * 256);
-    for (let byte = 1; byte < 256; byte++) {
-      const bin = binOf(byte);
-      if (bin >= 0) table.set([...scale[bin], 110 + (120 * bin) / bins], 4 * byte);
-    }
-    const image = new ImageData(g.columns, g.rows);
-    const [from, to] = [new Uint32Array(table.buffer), new Uint32Array(image.data.buffer)];
-    for (let i = 0; i < g.mass.length; i++) to[i] = from[g.mass[i]];
-    const picture = document.createElement("canvas");
-    [picture.width, picture.height] = [g.columns, g.rows];
-    picture.getContext("2d")!.putImageData(image, 0, 0);
-    const [first, last] = [frame.forward(g.first as { lon: number; lat: number }), frame.forward(g.last as { lon: number; lat: number })];
-    const h = g.cellM / 2;
-    out.grid = { picture, west: first.e - h, south: first.n - h, width: last.e - first.e + g.cellM, height: last.n - first.n + g.cellM, cellM: g.cellM };
-    return out;
-  }
-  out.cells = Array.from({ length: bins }, () => new Path2D());
-  for (const s of b.stretches) {
-    const at = s.middles.map((m) => frame.forward(m as { lon: number; lat: number }));
-    // Cells meet half-way between their middles; outermost ones end half a cell on.
-    const joint = (i: number): EN => {
-      if (i > 0 && i < at.length) return { e: (at[i - 1].e + at[i].e) / 2, n: (at[i - 1].n + at[i].n) / 2 };
-      const [p, q] = i === 0 ? [at[0], at[1]] : [at[at.length - 1], at[at.length - 2]];
-      if (!q) return { e: p.e + (i === 0 ? -s.cellM / 2 : s.cellM / 2), n: p.n };
-      return { e: p.e + (p.e - q.e) / 2, n: p.n + (p.n - q.n) / 2 };
-    };
-    let last = -1;
-    for (let i = 0; i < at.length; i++) {
-      const bin = binOf(s.mass[i]);
-      if (bin < 0) {
-        last = -1;
-        continue;
-      }
-      const path = out.cells[bin];
-      if (bin !== last) {
-        const from = joint(i);
-        path.moveTo(from.e, from.n);
-      }
-      path.lineTo(at[i].e, at[i].n);
-      const to = joint(i + 1);
-      path.lineTo(to.e, to.n);
-      last = bin;
-    }
-  }
-  return out;
-}
-
-/** Draws a belief, the densest on top. */
-export function drawBelief(ctx: Ctx, v: View, b: Placed, dark: boolean) {
-  const scale = beliefScale(dark);
-  metres(ctx, v, () => {
-    if (b.grid) {
-      // Cells that are seen one by one keep their edges.
-      ctx.imageSmoothingEnabled = b.grid.cellM / v.mPerPx < 3;
-      ctx.drawImage(b.grid.picture, b.grid.west, b.grid.south, b.grid.width, b.grid.height);
-    }
-    ctx.lineJoin = "round";
-    ctx.lineCap = "butt";
-    b.cells.forEach((path, bin) => {
-      ctx.strokeStyle = css(scale[bin]);
-      ctx.lineWidth = (5 + (5 * bin) / bins) * v.mPerPx;
-      ctx.stroke(path);
-    });
-  });
 }
 
 /** Draws a line through places, broken where one is not known. */

@@ -4,6 +4,8 @@ import type { LonLat } from "./project";
 
 export const tool = signal<"none" | "place" | "area" | "route">("none");
 export const spot = signal<LonLat | undefined>(undefined);
+/** The name of what is asked about, if it has one. */
+export const asksFor = signal("");
 export const spotRadiusM = signal(25);
 export const corners = signal<LonLat[]>([]);
 /** The corners of a route that is planned. */
@@ -12,6 +14,7 @@ export const closed = signal(false);
 
 /** Points at a place with the tool in hand. */
 export function point(p: LonLat) {
+  asksFor.value = "";
   if (tool.value === "place") {
     forgetArea();
     spot.value = p;

@@ -109,11 +109,15 @@ type BeliefGrid struct {
 	FirstLast *Position `protobuf:"bytes,4,opt,name=first_last,json=firstLast,proto3" json:"first_last,omitempty"`
 	LastFirst *Position `protobuf:"bytes,5,opt,name=last_first,json=lastFirst,proto3" json:"last_first,omitempty"`
 	Last      *Position `protobuf:"bytes,6,opt,name=last,proto3" json:"last,omitempty"`
-	// A byte for each cell, row by row.
+	// A byte for each cell, row by row; or for those that runs tell.
 	Mass []byte `protobuf:"bytes,7,opt,name=mass,proto3" json:"mass,omitempty"`
-	// The side of a cell, m: the belief's own, or that doubled until there are at
-	// most 65536.
-	CellM         float64 `protobuf:"fixed64,8,opt,name=cell_m,json=cellM,proto3" json:"cell_m,omitempty"`
+	// The side of a cell, m: the belief's own, or that doubled until there are no
+	// more cells than were asked for.
+	CellM float64 `protobuf:"fixed64,8,opt,name=cell_m,json=cellM,proto3" json:"cell_m,omitempty"`
+	// Only where it was asked for packed: by turns, how many cells are 0 and are
+	// passed over in mass, and how many follow in it; what is left after the last
+	// is 0. Row by row, rows joined.
+	Runs          []uint32 `protobuf:"varint,9,rep,packed,name=runs,proto3" json:"runs,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -204,8 +208,15 @@ func (x *BeliefGrid) GetCellM() float64 {
 	return 0
 }
 
-// BeliefStretch is a run of cells along a directed edge. At most 4096 cells are
-// told, the heaviest ones.
+func (x *BeliefGrid) GetRuns() []uint32 {
+	if x != nil {
+		return x.Runs
+	}
+	return nil
+}
+
+// BeliefStretch is a run of cells along a directed edge. No more cells are told
+// than were asked for, the heaviest ones.
 type BeliefStretch struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	Edge  uint32                 `protobuf:"varint,1,opt,name=edge,proto3" json:"edge,omitempty"`
@@ -215,8 +226,12 @@ type BeliefStretch struct {
 	CellM float64 `protobuf:"fixed64,3,opt,name=cell_m,json=cellM,proto3" json:"cell_m,omitempty"`
 	// A byte for each cell.
 	Mass []byte `protobuf:"bytes,4,opt,name=mass,proto3" json:"mass,omitempty"`
-	// Middles of the cells.
-	Middles       []*Position `protobuf:"bytes,5,rep,name=middles,proto3" json:"middles,omitempty"`
+	// Middles of the cells. None where they were asked for packed.
+	Middles []*Position `protobuf:"bytes,5,rep,name=middles,proto3" json:"middles,omitempty"`
+	// Where they were: the same in the map's frame, as DrawMap has it, in
+	// centimetres: the first one, then differences.
+	EastCm        []int32 `protobuf:"zigzag32,6,rep,packed,name=east_cm,json=eastCm,proto3" json:"east_cm,omitempty"`
+	NorthCm       []int32 `protobuf:"zigzag32,7,rep,packed,name=north_cm,json=northCm,proto3" json:"north_cm,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -286,6 +301,20 @@ func (x *BeliefStretch) GetMiddles() []*Position {
 	return nil
 }
 
+func (x *BeliefStretch) GetEastCm() []int32 {
+	if x != nil {
+		return x.EastCm
+	}
+	return nil
+}
+
+func (x *BeliefStretch) GetNorthCm() []int32 {
+	if x != nil {
+		return x.NorthCm
+	}
+	return nil
+}
+
 var File_leadline_v1_belief_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_belief_proto_rawDesc = "" +
@@ -295,7 +324,7 @@ const file_leadline_v1_belief_proto_rawDesc = "" +
 	"\tpeak_mass\x18\x01 \x01(\x01R\bpeakMass\x12+\n" +
 	"\x04grid\x18\x02 \x01(\v2\x17.leadline.v1.BeliefGridR\x04grid\x128\n" +
 	"\tstretches\x18\x03 \x03(\v2\x1a.leadline.v1.BeliefStretchR\tstretches\x12\x12\n" +
-	"\x04rest\x18\x04 \x01(\x01R\x04rest\"\xa9\x02\n" +
+	"\x04rest\x18\x04 \x01(\x01R\x04rest\"\xbd\x02\n" +
 	"\n" +
 	"BeliefGrid\x12\x18\n" +
 	"\acolumns\x18\x01 \x01(\rR\acolumns\x12\x12\n" +
@@ -307,13 +336,16 @@ const file_leadline_v1_belief_proto_rawDesc = "" +
 	"last_first\x18\x05 \x01(\v2\x15.leadline.v1.PositionR\tlastFirst\x12)\n" +
 	"\x04last\x18\x06 \x01(\v2\x15.leadline.v1.PositionR\x04last\x12\x12\n" +
 	"\x04mass\x18\a \x01(\fR\x04mass\x12\x15\n" +
-	"\x06cell_m\x18\b \x01(\x01R\x05cellM\"\x96\x01\n" +
+	"\x06cell_m\x18\b \x01(\x01R\x05cellM\x12\x12\n" +
+	"\x04runs\x18\t \x03(\rR\x04runs\"\xca\x01\n" +
 	"\rBeliefStretch\x12\x12\n" +
 	"\x04edge\x18\x01 \x01(\rR\x04edge\x12\x15\n" +
 	"\x06from_m\x18\x02 \x01(\x01R\x05fromM\x12\x15\n" +
 	"\x06cell_m\x18\x03 \x01(\x01R\x05cellM\x12\x12\n" +
 	"\x04mass\x18\x04 \x01(\fR\x04mass\x12/\n" +
-	"\amiddles\x18\x05 \x03(\v2\x15.leadline.v1.PositionR\amiddlesB'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
+	"\amiddles\x18\x05 \x03(\v2\x15.leadline.v1.PositionR\amiddles\x12\x17\n" +
+	"\aeast_cm\x18\x06 \x03(\x11R\x06eastCm\x12\x19\n" +
+	"\bnorth_cm\x18\a \x03(\x11R\anorthCmB'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
 
 var (
 	file_leadline_v1_belief_proto_rawDescOnce sync.Once

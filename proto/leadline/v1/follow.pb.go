@@ -111,7 +111,12 @@ type FollowRequest struct {
 	ResumeToken string `protobuf:"bytes,8,opt,name=resume_token,json=resumeToken,proto3" json:"resume_token,omitempty"`
 	// Tell of alarms, too, of all vehicles: those on record first, then each
 	// when something about it changes.
-	Alarms        bool `protobuf:"varint,9,opt,name=alarms,proto3" json:"alarms,omitempty"`
+	Alarms bool `protobuf:"varint,9,opt,name=alarms,proto3" json:"alarms,omitempty"`
+	// At most so many cells of a belief, with DETAIL_BELIEF: up to 1048576 on a
+	// plane, and of them 32768 on roads. With it, cells come packed: see
+	// BeliefGrid.runs and BeliefStretch.east_cm. If left out, 65536 and 4096, not
+	// packed.
+	BeliefCells   uint32 `protobuf:"varint,10,opt,name=belief_cells,json=beliefCells,proto3" json:"belief_cells,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -207,6 +212,13 @@ func (x *FollowRequest) GetAlarms() bool {
 		return x.Alarms
 	}
 	return false
+}
+
+func (x *FollowRequest) GetBeliefCells() uint32 {
+	if x != nil {
+		return x.BeliefCells
+	}
+	return 0
 }
 
 // FollowResponse is news of one vehicle. Several posteriors may come together,
@@ -456,7 +468,7 @@ var File_leadline_v1_follow_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_follow_proto_rawDesc = "" +
 	"\n" +
-	"\x18leadline/v1/follow.proto\x12\vleadline.v1\x1a\x17leadline/v1/alarm.proto\x1a\x18leadline/v1/belief.proto\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x17leadline/v1/trail.proto\"\x83\x03\n" +
+	"\x18leadline/v1/follow.proto\x12\vleadline.v1\x1a\x17leadline/v1/alarm.proto\x1a\x18leadline/v1/belief.proto\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x17leadline/v1/trail.proto\"\xa6\x03\n" +
 	"\rFollowRequest\x12\x1a\n" +
 	"\bvehicles\x18\x01 \x03(\tR\bvehicles\x12+\n" +
 	"\x06detail\x18\x02 \x01(\x0e2\x13.leadline.v1.DetailR\x06detail\x12$\n" +
@@ -466,7 +478,9 @@ const file_leadline_v1_follow_proto_rawDesc = "" +
 	"\x10area_probability\x18\x06 \x01(\x01H\x00R\x0fareaProbability\x88\x01\x01\x12)\n" +
 	"\x10region_fractions\x18\a \x03(\x01R\x0fregionFractions\x12!\n" +
 	"\fresume_token\x18\b \x01(\tR\vresumeToken\x12\x16\n" +
-	"\x06alarms\x18\t \x01(\bR\x06alarmsB\x13\n" +
+	"\x06alarms\x18\t \x01(\bR\x06alarms\x12!\n" +
+	"\fbelief_cells\x18\n" +
+	" \x01(\rR\vbeliefCellsB\x13\n" +
 	"\x11_area_probability\"\xc1\x03\n" +
 	"\x0eFollowResponse\x12\x18\n" +
 	"\avehicle\x18\x01 \x01(\tR\avehicle\x12\x14\n" +

@@ -19,7 +19,7 @@ class Belief(_message.Message):
     def __init__(self, peak_mass: _Optional[float] = ..., grid: _Optional[_Union[BeliefGrid, _Mapping]] = ..., stretches: _Optional[_Iterable[_Union[BeliefStretch, _Mapping]]] = ..., rest: _Optional[float] = ...) -> None: ...
 
 class BeliefGrid(_message.Message):
-    __slots__ = ["cell_m", "columns", "first", "first_last", "last", "last_first", "mass", "rows"]
+    __slots__ = ["cell_m", "columns", "first", "first_last", "last", "last_first", "mass", "rows", "runs"]
     CELL_M_FIELD_NUMBER: _ClassVar[int]
     COLUMNS_FIELD_NUMBER: _ClassVar[int]
     FIRST_FIELD_NUMBER: _ClassVar[int]
@@ -28,6 +28,7 @@ class BeliefGrid(_message.Message):
     LAST_FIRST_FIELD_NUMBER: _ClassVar[int]
     MASS_FIELD_NUMBER: _ClassVar[int]
     ROWS_FIELD_NUMBER: _ClassVar[int]
+    RUNS_FIELD_NUMBER: _ClassVar[int]
     cell_m: float
     columns: int
     first: _place_pb2.Position
@@ -36,18 +37,23 @@ class BeliefGrid(_message.Message):
     last_first: _place_pb2.Position
     mass: bytes
     rows: int
-    def __init__(self, columns: _Optional[int] = ..., rows: _Optional[int] = ..., first: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., first_last: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., last_first: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., last: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., mass: _Optional[bytes] = ..., cell_m: _Optional[float] = ...) -> None: ...
+    runs: _containers.RepeatedScalarFieldContainer[int]
+    def __init__(self, columns: _Optional[int] = ..., rows: _Optional[int] = ..., first: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., first_last: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., last_first: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., last: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., mass: _Optional[bytes] = ..., cell_m: _Optional[float] = ..., runs: _Optional[_Iterable[int]] = ...) -> None: ...
 
 class BeliefStretch(_message.Message):
-    __slots__ = ["cell_m", "edge", "from_m", "mass", "middles"]
+    __slots__ = ["cell_m", "east_cm", "edge", "from_m", "mass", "middles", "north_cm"]
     CELL_M_FIELD_NUMBER: _ClassVar[int]
+    EAST_CM_FIELD_NUMBER: _ClassVar[int]
     EDGE_FIELD_NUMBER: _ClassVar[int]
     FROM_M_FIELD_NUMBER: _ClassVar[int]
     MASS_FIELD_NUMBER: _ClassVar[int]
     MIDDLES_FIELD_NUMBER: _ClassVar[int]
+    NORTH_CM_FIELD_NUMBER: _ClassVar[int]
     cell_m: float
+    east_cm: _containers.RepeatedScalarFieldContainer[int]
     edge: int
     from_m: float
     mass: bytes
     middles: _containers.RepeatedCompositeFieldContainer[_place_pb2.Position]
-    def __init__(self, edge: _Optional[int] = ..., from_m: _Optional[float] = ..., cell_m: _Optional[float] = ..., mass: _Optional[bytes] = ..., middles: _Optional[_Iterable[_Union[_place_pb2.Position, _Mapping]]] = ...) -> None: ...
+    north_cm: _containers.RepeatedScalarFieldContainer[int]
+    def __init__(self, edge: _Optional[int] = ..., from_m: _Optional[float] = ..., cell_m: _Optional[float] = ..., mass: _Optional[bytes] = ..., middles: _Optional[_Iterable[_Union[_place_pb2.Position, _Mapping]]] = ..., east_cm: _Optional[_Iterable[int]] = ..., north_cm: _Optional[_Iterable[int]] = ...) -> None: ...

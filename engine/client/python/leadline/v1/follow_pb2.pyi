@@ -27,10 +27,11 @@ class Farewell(_message.Message):
     def __init__(self, ended: bool = ..., posterior_sha256: _Optional[str] = ..., reason: _Optional[str] = ...) -> None: ...
 
 class FollowRequest(_message.Message):
-    __slots__ = ["alarms", "area", "area_probability", "detail", "min_interval_s", "region_fractions", "resume_token", "status_changes_only", "vehicles"]
+    __slots__ = ["alarms", "area", "area_probability", "belief_cells", "detail", "min_interval_s", "region_fractions", "resume_token", "status_changes_only", "vehicles"]
     ALARMS_FIELD_NUMBER: _ClassVar[int]
     AREA_FIELD_NUMBER: _ClassVar[int]
     AREA_PROBABILITY_FIELD_NUMBER: _ClassVar[int]
+    BELIEF_CELLS_FIELD_NUMBER: _ClassVar[int]
     DETAIL_FIELD_NUMBER: _ClassVar[int]
     MIN_INTERVAL_S_FIELD_NUMBER: _ClassVar[int]
     REGION_FRACTIONS_FIELD_NUMBER: _ClassVar[int]
@@ -40,13 +41,14 @@ class FollowRequest(_message.Message):
     alarms: bool
     area: _place_pb2.Polygon
     area_probability: float
+    belief_cells: int
     detail: Detail
     min_interval_s: float
     region_fractions: _containers.RepeatedScalarFieldContainer[float]
     resume_token: str
     status_changes_only: bool
     vehicles: _containers.RepeatedScalarFieldContainer[str]
-    def __init__(self, vehicles: _Optional[_Iterable[str]] = ..., detail: _Optional[_Union[Detail, str]] = ..., min_interval_s: _Optional[float] = ..., status_changes_only: bool = ..., area: _Optional[_Union[_place_pb2.Polygon, _Mapping]] = ..., area_probability: _Optional[float] = ..., region_fractions: _Optional[_Iterable[float]] = ..., resume_token: _Optional[str] = ..., alarms: bool = ...) -> None: ...
+    def __init__(self, vehicles: _Optional[_Iterable[str]] = ..., detail: _Optional[_Union[Detail, str]] = ..., min_interval_s: _Optional[float] = ..., status_changes_only: bool = ..., area: _Optional[_Union[_place_pb2.Polygon, _Mapping]] = ..., area_probability: _Optional[float] = ..., region_fractions: _Optional[_Iterable[float]] = ..., resume_token: _Optional[str] = ..., alarms: bool = ..., belief_cells: _Optional[int] = ...) -> None: ...
 
 class FollowResponse(_message.Message):
     __slots__ = ["alarm", "belief", "drive", "farewell", "posterior", "recent", "resume_token", "skipped", "vehicle", "withdrawn"]

@@ -96,19 +96,28 @@ export declare type BeliefGrid = Message<"leadline.v1.BeliefGrid"> & {
   last?: Position | undefined;
 
   /**
-   * A byte for each cell, row by row.
+   * A byte for each cell, row by row; or for those that runs tell.
    *
    * @generated from field: bytes mass = 7;
    */
   mass: Uint8Array;
 
   /**
-   * The side of a cell, m: the belief's own, or that doubled until there are at
-   * most 65536.
+   * The side of a cell, m: the belief's own, or that doubled until there are no
+   * more cells than were asked for.
    *
    * @generated from field: double cell_m = 8;
    */
   cellM: number;
+
+  /**
+   * Only where it was asked for packed: by turns, how many cells are 0 and are
+   * passed over in mass, and how many follow in it; what is left after the last
+   * is 0. Row by row, rows joined.
+   *
+   * @generated from field: repeated uint32 runs = 9;
+   */
+  runs: number[];
 };
 
 /**
@@ -118,8 +127,8 @@ export declare type BeliefGrid = Message<"leadline.v1.BeliefGrid"> & {
 export declare const BeliefGridSchema: GenMessage<BeliefGrid>;
 
 /**
- * BeliefStretch is a run of cells along a directed edge. At most 4096 cells are
- * told, the heaviest ones.
+ * BeliefStretch is a run of cells along a directed edge. No more cells are told
+ * than were asked for, the heaviest ones.
  *
  * @generated from message leadline.v1.BeliefStretch
  */
@@ -151,11 +160,24 @@ export declare type BeliefStretch = Message<"leadline.v1.BeliefStretch"> & {
   mass: Uint8Array;
 
   /**
-   * Middles of the cells.
+   * Middles of the cells. None where they were asked for packed.
    *
    * @generated from field: repeated leadline.v1.Position middles = 5;
    */
   middles: Position[];
+
+  /**
+   * Where they were: the same in the map's frame, as DrawMap has it, in
+   * centimetres: the first one, then differences.
+   *
+   * @generated from field: repeated sint32 east_cm = 6;
+   */
+  eastCm: number[];
+
+  /**
+   * @generated from field: repeated sint32 north_cm = 7;
+   */
+  northCm: number[];
 };
 
 /**

@@ -91,6 +91,16 @@ export declare type FollowRequest = Message<"leadline.v1.FollowRequest"> & {
    * @generated from field: bool alarms = 9;
    */
   alarms: boolean;
+
+  /**
+   * At most so many cells of a belief, with DETAIL_BELIEF: up to 1048576 on a
+   * plane, and of them 32768 on roads. With it, cells come packed: see
+   * BeliefGrid.runs and BeliefStretch.east_cm. If left out, 65536 and 4096, not
+   * packed.
+   *
+   * @generated from field: uint32 belief_cells = 10;
+   */
+  beliefCells: number;
 };
 
 /**
