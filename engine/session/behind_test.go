@@ -50,7 +50,7 @@ func TestBehind(t *testing.T) {
 					t.Errorf("asked for %v s ago, it tells of %v s ago", lagS, ago)
 				}
 				var want, filtered *summary.Posterior
-				err = LookBack(c.config, events[:until], HindsightOptions{Give: func(h Hindsight) error {
+				err = LookBack(c.config, List(events[:until]), HindsightOptions{Give: func(h Hindsight) error {
 					if h.Filtered.TimeNS == got.TimeNS {
 						want, filtered = h.Smoothed, h.Filtered
 					}

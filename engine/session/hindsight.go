@@ -5,7 +5,6 @@ import (
 	"slices"
 
 	"leadline/engine/filter"
-	"leadline/engine/sensor"
 	"leadline/engine/summary"
 )
 
@@ -44,23 +43,23 @@ const (
 // are the final ones of that session, bit for bit.
 //
 // Memory is bounded: the drive is cut where the tape of what the filter did is
-// full, and of mostCheckpoints cuts every other one is given up. From the last
+// full, and of mostCheckpoints cuts, or of more than TapeBytes of them, every other one is given up. From the last
 // cut to the first each stretch is computed again and run backward; then from the
-// first to the last, to be given away.
-func LookBack(c Config, events []sensor.Event, o HindsightOptions) error {
+// first to the last, to be given away. Of the events no more are held than the filter looks at.
+func LookBack(c Config, events Events, o HindsightOptions) error {
 	l, err := newLooker(c, o)
 	if err != nil {
 		return err
 	}
-	if len(events) == 0 {
+	if events.Len() == 0 {
 		return errors.New("there is no event to look back over")
 	}
-	s := l.s
-	for _, ev := range events {
-		s.log.insert(len(s.log.events), ev, s.suite)
+	l.all = events
+	if err := l.fill(); err != nil {
+		return err
 	}
-	s.begin()
-	_, err = l.stretch(l.first(), len(events), nil, true)
+	l.s.begin()
+	_, err = l.stretch(l.first(), events.Len(), nil, true)
 	return err
 }
 
@@ -68,7 +67,12 @@ func LookBack(c Config, events []sensor.Event, o HindsightOptions) error {
 type looker struct {
 	s *Session
 	HindsightOptions
-	tape filter.Tape
+	// all are the drive's events, if not all are in the log; base is the number of
+	// the log's first one.
+	all   Events
+	base  int
+	least int // leastAhead, less in tests
+	tape  filter.Tape
 	// The tape's beginning, and the posteriors along it.
 	begin cut
 	marks []mark
@@ -78,7 +82,8 @@ type looker struct {
 // cut is a place where a drive is cut.
 type cut struct {
 	state state
-	next  int
+	next  int         // number of the first event after it
+	heard []source    // the last motion of each source before, where the log is read anew
 	way   filter.Way  // on lines
 	best  filter.Best // on a plane
 }
@@ -110,7 +115,7 @@ func newLooker(c Config, o HindsightOptions) (*looker, error) {
 	if o.TapeBytes == 0 {
 		o.TapeBytes = defaultTapeBytes
 	}
-	return &looker{s: s, HindsightOptions: o}, nil
+	return &looker{s: s, HindsightOptions: o, least: leastAhead}, nil
 }
 
 // runsBackward is nil if what the filter does can be run backward.
@@ -122,7 +127,7 @@ func (s *Session) runsBackward() error {
 }
 
 func (l *looker) first() cut {
-	c := cut{state: l.s.state.clone(), next: l.s.log.next}
+	c := l.cut()
 	switch b := l.s.state.belief; {
 	case !l.Path:
 	case l.s.lines != nil:
@@ -138,11 +143,17 @@ func (l *looker) first() cut {
 // between away if told to.
 func (l *looker) stretch(from cut, until int, later *known, give bool) (*known, error) {
 	cuts := []cut{from}
-	l.resume(from)
-	for every, n := 1, 0; l.s.log.next < until; {
+	if err := l.resume(from); err != nil {
+		return nil, err
+	}
+	for every, n, held := 1, 0, beliefBytes(from.state.belief); l.base+l.s.log.next < until; {
+		if err := l.fill(); err != nil {
+			return nil, err
+		}
 		t, end, _ := l.s.next(true)
 		p := l.s.step(t, end)
-		if p == nil && until == l.s.horizon() && l.s.log.next == until {
+		at := l.base + l.s.log.next
+		if p == nil && at == until && at == l.end() {
 			p = l.s.summarise() // the last time is never passed over
 		}
 		l.mark(p)
@@ -151,21 +162,26 @@ func (l *looker) stretch(from cut, until int, later *known, give bool) (*known, 
 				return nil, err
 			}
 		}
-		if l.tape.Bytes() <= l.TapeBytes || l.s.log.next == until {
+		l.forget()
+		if l.tape.Bytes() <= l.TapeBytes || at == until {
 			continue
 		}
 		l.fold()
 		if n++; n%every == 0 {
 			cuts = append(cuts, l.begin)
+			held += beliefBytes(l.begin.state.belief)
 		}
-		if len(cuts) > mostCheckpoints {
+		if len(cuts) > mostCheckpoints || len(cuts) > 3 && held > l.TapeBytes {
 			every *= 2
 			kept := cuts[:1]
 			for i := 2; i < len(cuts); i += 2 {
 				kept = append(kept, cuts[i])
 			}
 			clear(cuts[len(kept):])
-			cuts = kept
+			cuts, held = kept, 0
+			for _, c := range cuts {
+				held += beliefBytes(c.state.belief)
+			}
 		}
 	}
 	if len(cuts) == 1 && l.begin.next == from.next {
@@ -198,18 +214,22 @@ func (l *looker) stretch(from cut, until int, later *known, give bool) (*known, 
 }
 
 // resume puts the session where a drive was cut, and begins a tape there.
-func (l *looker) resume(c cut) {
+func (l *looker) resume(c cut) error {
 	s := l.s
-	s.state, s.log.next, s.fresh = c.state.clone(), c.next, false
+	s.state, s.fresh = c.state.clone(), false
+	if err := l.reread(c); err != nil {
+		return err
+	}
 	s.desk().work.Release()
 	l.begin, l.marks = c, nil
 	s.desk().work.Record(&l.tape, s.state.belief)
+	return nil
 }
 
 // fold cuts the drive here and begins another tape.
 func (l *looker) fold() {
 	b := l.s.state.belief
-	next := cut{state: l.s.state.clone(), next: l.s.log.next}
+	next := l.cut()
 	switch {
 	case !l.Path:
 	case l.s.lines != nil:

@@ -26,7 +26,7 @@ func hindsight(t *testing.T, c Config, events []sensor.Event, tapeBytes int) (ha
 	}
 	s.Flush()
 	settled = append(settled, s.Held()...)
-	err := LookBack(c, settled, HindsightOptions{Path: true, TapeBytes: tapeBytes, Give: func(h Hindsight) error {
+	err := LookBack(c, List(settled), HindsightOptions{Path: true, TapeBytes: tapeBytes, Give: func(h Hindsight) error {
 		out = append(out, h)
 		return nil
 	}})
@@ -34,6 +34,33 @@ func hindsight(t *testing.T, c Config, events []sensor.Event, tapeBytes int) (ha
 		t.Fatal(err)
 	}
 	return s.Hash(), out
+}
+
+// reading looks back with few events in memory at a time.
+func reading(t *testing.T, c Config, events []sensor.Event, tapeBytes int) (out []Hindsight) {
+	t.Helper()
+	most := 0
+	var l *looker
+	l, err := newLooker(c, HindsightOptions{Path: true, TapeBytes: tapeBytes, Give: func(h Hindsight) error {
+		out, most = append(out, h), max(most, len(l.s.log.events))
+		return nil
+	}})
+	if err != nil {
+		t.Fatal(err)
+	}
+	all := List(inOrder(events))
+	l.all, l.least = all, 20
+	if err := l.fill(); err != nil {
+		t.Fatal(err)
+	}
+	l.s.begin()
+	if _, err := l.stretch(l.first(), all.Len(), nil, true); err != nil {
+		t.Fatal(err)
+	}
+	if len(all) > 512 && most > len(all)/2 { // fewer are not dropped
+		t.Errorf("of %d events %d were in memory", len(all), most)
+	}
+	return out
 }
 
 // TestLookBack: looking back comes by the posteriors that the session had, bit for
@@ -59,6 +86,9 @@ func TestLookBack(t *testing.T) {
 		t.Run(c.name, func(t *testing.T) {
 			hash, whole := hindsight(t, c.config, c.events, 0)
 			_, cut := hindsight(t, c.config, c.events, 100_000)
+			if few := reading(t, c.config, c.events, 100_000); !reflect.DeepEqual(whole, few) {
+				t.Error("with few events in memory it finds something else")
+			}
 			if !reflect.DeepEqual(whole, cut) {
 				t.Error("with a short tape it finds something else")
 			}
@@ -103,10 +133,10 @@ func TestLookBackStops(t *testing.T) {
 	events := slices.SortedStableFunc(slices.Values(planeEvents(5)), sensor.Event.Compare)
 	stop := &Refusal{TooLate, "enough"}
 	o := HindsightOptions{Give: func(Hindsight) error { return stop }}
-	if err := LookBack(c, events, o); !errors.Is(err, stop) {
+	if err := LookBack(c, List(events), o); !errors.Is(err, stop) {
 		t.Errorf("got %v", err)
 	}
-	if err := LookBack(c, nil, o); err == nil {
+	if err := LookBack(c, List(nil), o); err == nil {
 		t.Error("a drive without events has nothing to look back over")
 	}
 }

@@ -175,7 +175,7 @@ func TestVelocityOnAPlane(t *testing.T) {
 		if !p.Speed.Course.Known || math.Abs(p.Speed.MPS-5) > 3*p.Speed.SigmaMPS || math.Abs(geo.WrapPi(p.Speed.Course.TrueRad-g-math.Atan2(6, 8))) > 3*p.Speed.Course.SigmaRad || p.Speed.SigmaMPS > 1 {
 			t.Errorf("grid %v: speed %+v, want 5 m/s", grid, p.Speed)
 		}
-		if err := LookBack(cfg, []sensor.Event{{Time: at, Sensor: "fix", Measurement: sensor.Fix{Position: frame.Inverse(truth), SigmaM: 10}}}, HindsightOptions{Give: func(Hindsight) error { return nil }}); grid != (err != nil && strings.Contains(err.Error(), "velocity_grid")) {
+		if err := LookBack(cfg, List{{Time: at, Sensor: "fix", Measurement: sensor.Fix{Position: frame.Inverse(truth), SigmaM: 10}}}, HindsightOptions{Give: func(Hindsight) error { return nil }}); grid != (err != nil && strings.Contains(err.Error(), "velocity_grid")) {
 			t.Errorf("grid %v: looking back: %v", grid, err)
 		}
 	}

@@ -2,7 +2,6 @@ package replay
 
 import (
 	"leadline/engine/drivefile"
-	"leadline/engine/sensor"
 	"leadline/engine/session"
 )
 
@@ -14,7 +13,7 @@ func Behind(h drivefile.Header, c session.Config, lagS float64, tapeBytes int) (
 
 // LookBack looks back over a drive that was run: events are those that Settled was
 // given. See session.LookBack.
-func LookBack(h drivefile.Header, c session.Config, events []sensor.Event, o session.HindsightOptions) error {
+func LookBack(h drivefile.Header, c session.Config, events session.Events, o session.HindsightOptions) error {
 	c.Vehicle, c.Start = h.Vehicle, Start(h.Start)
 	return session.LookBack(c, events, o)
 }

@@ -50,7 +50,7 @@ const MaxRefusals = 1000
 
 // Timing is what a replay took, by the machine's clock: nothing else in a
 // Result depends on that. Milliseconds are of one measurement, with what it
-// released; percentiles are order statistics at rank ceil(n·p).
+// released; percentiles are within 0.05 % or a nanosecond (score.Sample).
 type Timing struct {
 	Measurements          int     `json:"measurements"`
 	Posteriors            int     `json:"posteriors"`

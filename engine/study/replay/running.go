@@ -2,13 +2,12 @@ package replay
 
 import (
 	"errors"
-	"math"
-	"slices"
 	"time"
 
 	"leadline/engine/drivefile"
 	"leadline/engine/sensor"
 	"leadline/engine/session"
+	"leadline/engine/study/score"
 	"leadline/engine/summary"
 )
 
@@ -18,7 +17,7 @@ type running struct {
 	s           *session.Session
 	began, last time.Time
 	latest      sensor.Time
-	tookMs      []float64
+	tookMs      score.Sample
 	n           int
 	fixes       *fixes // nil: nobody asks
 	moments     moments
@@ -76,7 +75,7 @@ func (r *running) add(ev sensor.Event) error {
 	}
 	_, err := r.s.Add(ev)
 	now := time.Now()
-	r.tookMs = append(r.tookMs, now.Sub(r.last).Seconds()*1e3)
+	r.tookMs.Add(now.Sub(r.last).Seconds() * 1e3)
 	r.last = now
 	var ref *session.Refusal
 	switch {
@@ -98,8 +97,6 @@ func (r *running) end() *Result {
 	filterS := time.Since(r.began).Seconds()
 	r.Accepted, r.Refused = r.s.Counts()
 	r.Hash = r.s.Hash()
-	slices.Sort(r.tookMs)
-	at := func(p float64) float64 { return r.tookMs[max(0, min(r.n-1, int(math.Ceil(p*float64(r.n)))-1))] }
 	t := &r.Timing
 	t.Measurements, t.Posteriors = r.n, len(r.Posteriors)
 	t.DriveS = r.latest.Seconds(r.Start)
@@ -108,6 +105,6 @@ func (r *running) end() *Result {
 		t.MeasurementsPerSecond = float64(r.n) / filterS
 		t.TimesRealTime = t.DriveS / filterS
 	}
-	t.P50Ms, t.P99Ms, t.MaxMs = at(0.5), at(0.99), r.tookMs[r.n-1]
+	t.P50Ms, t.P99Ms, t.MaxMs = r.tookMs.Quantile(0.5), r.tookMs.Quantile(0.99), r.tookMs.Max()
 	return &r.Result
 }

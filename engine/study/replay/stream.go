@@ -134,33 +134,53 @@ func Stream(ctx context.Context, rd io.Reader, name string, c session.Config, o 
 	return res, stopped
 }
 
-// Look reads of a drive what must be known before it is streamed: its header,
-// its truths (those of Truth), and the SHA-256 of the file. Measurements are
-// passed over unread. A truth takes some 40 bytes.
-func Look(rd io.Reader, name string) (drivefile.Header, []score.Truth, string, error) {
+// Glance is what must be known of a drive before it is streamed.
+type Glance struct {
+	Header drivefile.Header
+	// Truth are the truths (those of Truth), valid until Close.
+	Truth  []score.Truth
+	SHA256 string // of the file
+	closer io.Closer
+}
+
+// Close gives the truths back.
+func (g *Glance) Close() error { return g.closer.Close() }
+
+// Look reads of a drive what must be known before it is streamed. Measurements are
+// passed over unread. Up to mostTruths truths are held, more are in a file.
+func Look(rd io.Reader, name string) (*Glance, error) {
 	sum := sha256.New()
 	tee := io.TeeReader(rd, sum)
 	in := drivefile.NewReader(tee, name)
 	in.TruthsAlone()
-	var d drivefile.Drive
-	for {
+	g := &Glance{}
+	all := truths{most: mostTruths}
+	defer all.drop()
+	for n := 0; ; {
 		rec, err := in.Read()
 		switch {
-		case errors.Is(err, io.EOF):
-			return d.Header, Truth(&d), hex.EncodeToString(sum.Sum(nil)), nil
-		case err != nil && d.Header.Vehicle == "":
-			return d.Header, nil, "", err
-		case err != nil: // the streaming comes to it, and says so
-			if _, err := io.Copy(io.Discard, tee); err != nil {
-				return d.Header, nil, "", fmt.Errorf("%s: %w", name, err)
+		case err != nil && !errors.Is(err, io.EOF) && g.Header.Vehicle == "":
+			return nil, err
+		case err != nil:
+			if !errors.Is(err, io.EOF) { // the streaming comes to it, and says so
+				if _, err := io.Copy(io.Discard, tee); err != nil {
+					return nil, fmt.Errorf("%s: %w", name, err)
+				}
 			}
-			return d.Header, Truth(&d), hex.EncodeToString(sum.Sum(nil)), nil
+			g.SHA256 = hex.EncodeToString(sum.Sum(nil))
+			g.Truth, g.closer, err = all.all()
+			return g, err
 		case rec.Header != nil:
-			d.Header, d.Time = *rec.Header, rec.Time
+			g.Header = *rec.Header
 		case rec.Truth != nil:
-			d.Truths = append(d.Truths, drivefile.TimedTruth{Time: rec.Time, Truth: *rec.Truth})
-			if len(d.Truths) > drivefile.MaxRecords {
-				return d.Header, nil, "", fmt.Errorf("%s:%d: more than %d truths: split the drive", name, rec.Line, drivefile.MaxRecords)
+			if v := rec.Truth.Vehicle; v != "" && v != g.Header.Vehicle {
+				continue
+			}
+			if n++; n > drivefile.MaxRecords {
+				return nil, fmt.Errorf("%s:%d: more than %d truths: split the drive", name, rec.Line, drivefile.MaxRecords)
+			}
+			if err := all.add(score.Truth{TimeNS: int64(rec.Time), At: rec.Truth.Position, SigmaM: rec.Truth.SigmaM}); err != nil {
+				return nil, fmt.Errorf("%s: %w", name, err)
 			}
 		}
 	}

@@ -5,11 +5,13 @@ import (
 	"context"
 	"errors"
 	"math/rand/v2"
+	"slices"
 	"strings"
 	"testing"
 
 	"leadline/engine/drivefile"
 	"leadline/engine/sensor"
+	"leadline/engine/study/score"
 	"leadline/engine/summary"
 )
 
@@ -127,16 +129,42 @@ func TestStreamBreaksOff(t *testing.T) {
 func TestLook(t *testing.T) {
 	d := drive(3)
 	text := file(t, d)
-	h, truth, sum, err := Look(bytes.NewReader(text), "f")
-	if err != nil || h.Vehicle != "boat" || len(truth) != len(d.Truths) || len(sum) != 64 {
-		t.Fatalf("%+v, %d truths, %q, %v", h, len(truth), sum, err)
+	g, err := Look(bytes.NewReader(text), "f")
+	if err != nil || g.Header.Vehicle != "boat" || len(g.Truth) != len(d.Truths) || len(g.SHA256) != 64 || g.Close() != nil {
+		t.Fatalf("%+v, %v", g, err)
 	}
-	bad := bytes.Replace(text, []byte(`"fix"`), []byte(`"fux"`), 1)
-	_, truth, other, err := Look(bytes.NewReader(bad), "f")
-	if err != nil || len(truth) != len(d.Truths) || other == sum {
-		t.Errorf("%d truths, %v", len(truth), err)
+	bad, err := Look(bytes.NewReader(bytes.Replace(text, []byte(`"fix"`), []byte(`"fux"`), 1)), "f")
+	if err != nil || len(bad.Truth) != len(d.Truths) || bad.SHA256 == g.SHA256 {
+		t.Errorf("%+v, %v", bad, err)
 	}
-	if _, _, _, err := Look(strings.NewReader(""), "f"); err == nil || !strings.Contains(err.Error(), "no header") {
+	if _, err := Look(strings.NewReader(""), "f"); err == nil || !strings.Contains(err.Error(), "no header") {
 		t.Errorf("an empty file: %v", err)
+	}
+}
+
+// TestManyTruths: those that go into a file come back as they came, by time, and those of
+// one time as they were.
+func TestManyTruths(t *testing.T) {
+	const seed = 2
+	rng := rand.New(rand.NewPCG(seed, 0))
+	for _, n := range []int{0, 1, 7, 8, 9, 16, 100} {
+		few, many := truths{most: 1000}, truths{most: 8}
+		for i := range n {
+			at := score.Truth{TimeNS: rng.Int64N(20), SigmaM: float64(i)}
+			if err := errors.Join(few.add(at), many.add(at)); err != nil {
+				t.Fatal(err)
+			}
+		}
+		want, _, err := few.all()
+		if err != nil {
+			t.Fatal(err)
+		}
+		got, closer, err := many.all()
+		if err != nil || !slices.Equal(got, want) {
+			t.Errorf("seed %d: of %d: %v, want %v: %v", seed, n, got, want, err)
+		}
+		if err := closer.Close(); err != nil {
+			t.Error(err)
+		}
 	}
 }

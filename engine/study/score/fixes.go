@@ -56,24 +56,23 @@ func (f *Fixes) Add(ev sensor.Event, before *summary.Posterior) {
 // End sums up.
 func (f *Fixes) End() *HeldOut {
 	out := &HeldOut{}
-	var errM []float64
+	var errM Sample
 	var square, nees, sigma, outside float64
 	for _, h := range append(f.list, f.waiting...) {
 		if !h.counts || math.IsInf(h.nees, 0) {
 			continue
 		}
-		errM = append(errM, h.errM)
+		errM.Add(h.errM)
 		square, nees, sigma = square+h.errM*h.errM, nees+h.nees, sigma+h.sigmaM*h.sigmaM
 		if h.wide {
 			outside++
 		}
 	}
-	n := float64(len(errM))
-	if out.Fixes = len(errM); n == 0 {
+	n := float64(errM.Len())
+	if out.Fixes = errM.Len(); n == 0 {
 		return out
 	}
-	slices.Sort(errM)
-	out.RMSEM, out.P50M, out.P95M = finite(math.Sqrt(square/n)), finite(sortedQuantile(errM, 0.5)), finite(sortedQuantile(errM, 0.95))
+	out.RMSEM, out.P50M, out.P95M = finite(math.Sqrt(square/n)), finite(errM.Quantile(0.5)), finite(errM.Quantile(0.95))
 	out.ANEES, out.SigmaM, out.Outside = finite(nees/n), finite(math.Sqrt(sigma/n)), finite(outside/n)
 	return out
 }

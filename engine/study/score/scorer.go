@@ -3,14 +3,13 @@ package score
 import (
 	"math"
 	"runtime"
-	"slices"
 
 	"leadline/engine/geo"
 	"leadline/engine/summary"
 )
 
-// Scorer scores a drive as its posteriors come. It keeps some 30 bytes of each.
-// One goroutine owns it.
+// Scorer scores a drive as its posteriors come. What it keeps of
+// them has a bound (Sample). One goroutine owns it.
 type Scorer struct {
 	score  Score
 	roads  func(geo.LonLat, float64) []Road
@@ -20,6 +19,7 @@ type Scorer struct {
 	n               int
 	located         bool
 	all, counted    sums
+	inOrder         series // those that count
 	details         details
 	fit             *fit
 	mix             []component
@@ -74,6 +74,7 @@ func (s *Scorer) Add(p *summary.Posterior) (truth Truth, errM float64, ok bool, 
 	s.all.add(e)
 	if s.located {
 		s.counted.add(e)
+		s.inOrder.add(e.errM)
 		if s.mix, err = mixture(s.mix[:0], p, truth); err != nil {
 			return Truth{}, 0, false, err
 		}
@@ -102,7 +103,7 @@ func (s *Scorer) Score(startNS int64, hash string) (*Score, error) {
 			out.LocatedAfterM = &m
 		}
 	}
-	independent := IndependentOf(s.counted.errM) // before figures sort them
+	independent := IndependentOf(s.inOrder.x)
 	out.Figures = s.counted.figures(s.roads != nil)
 	out.Details = s.details.figures(&s.counted, independent, startNS)
 	if out.TruthNote != nil {
@@ -132,7 +133,7 @@ const rankBins = 20
 
 // details collects what Details say.
 type details struct {
-	along, across     []float64
+	along, across     Sample
 	alongM, acrossM   float64
 	alongM2, acrossM2 float64
 	ranks             [2][]int
@@ -156,7 +157,8 @@ func (d *details) add(p *summary.Posterior, e one, truth Truth, m motion, mix []
 		u = m.along
 		along, across := dot(e.off, u), dot(e.off, rightOf(u))
 		d.moved++
-		d.along, d.across = append(d.along, math.Abs(along)), append(d.across, math.Abs(across))
+		d.along.Add(math.Abs(along))
+		d.across.Add(math.Abs(across))
 		d.alongM, d.acrossM = d.alongM+along, d.acrossM+across
 		d.alongM2, d.acrossM2 = d.alongM2+along*along, d.acrossM2+across*across
 	}
@@ -203,16 +205,14 @@ func (d *details) figures(counted *sums, independent float64, startNS int64) Det
 		return out
 	}
 	n := float64(d.scored)
-	out.P75M = finite(sortedQuantile(counted.errM, 0.75))
+	out.P75M = finite(counted.errM.Quantile(0.75))
 	out.Independent = &independent
 	out.LogScore, out.CRPSM = finite(d.logScore/n), finite(d.crps/n)
 	out.RankAlong, out.RankAcross = d.ranks[0], d.ranks[1]
 	if k := float64(d.moved); k > 0 {
-		slices.Sort(d.along)
-		slices.Sort(d.across)
 		out.AlongMeanM, out.AcrossMeanM = finite(d.alongM/k), finite(d.acrossM/k)
 		out.AlongRMSEM, out.AcrossRMSEM = finite(math.Sqrt(d.alongM2/k)), finite(math.Sqrt(d.acrossM2/k))
-		out.AlongP95M, out.AcrossP95M = finite(sortedQuantile(d.along, 0.95)), finite(sortedQuantile(d.across, 0.95))
+		out.AlongP95M, out.AcrossP95M = finite(d.along.Quantile(0.95)), finite(d.across.Quantile(0.95))
 	}
 	x := &Exceedance{Bounded: d.bounded, Beyond: d.beyond, Episodes: d.episodes, Risk: d.risk}
 	if d.bounded > 0 {

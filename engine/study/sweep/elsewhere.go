@@ -218,6 +218,11 @@ func (l *looked) at(d *Drive) (drivefile.Header, string, error) {
 		l.of[d] = g
 	}
 	l.mu.Unlock()
-	g.once.Do(func() { g.header, _, g.sum, g.err = d.look() })
+	g.once.Do(func() {
+		var seen *replay.Glance
+		if seen, g.err = d.look(); g.err == nil {
+			g.header, g.sum, g.err = seen.Header, seen.SHA256, seen.Close()
+		}
+	})
 	return g.header, g.sum, g.err
 }

@@ -17,7 +17,7 @@ import (
 
 // lookback is what looks back over a run.
 type lookback struct {
-	events         []sensor.Event // as the session took them
+	events         settled // as the session took them
 	smoothed, path *traced
 	agreement      score.Agreement
 }
@@ -39,7 +39,7 @@ func (w *work) settled() func([]sensor.Event) {
 		return w.lagging.take
 	}
 	return func(events []sensor.Event) {
-		w.back.events = append(w.back.events, events...)
+		w.back.events.add(events)
 		if w.lagging != nil {
 			w.lagging.take(events)
 		}
@@ -48,7 +48,7 @@ func (w *work) settled() func([]sensor.Event) {
 
 // lookBack runs the drive backward, writes what it finds, and scores it.
 func (w *work) lookBack(ctx context.Context) (*score.LookedBack, error) {
-	if !w.looksBack() || len(w.back.events) == 0 {
+	if !w.looksBack() || w.back.events.Len() == 0 {
 		return nil, nil
 	}
 	l := &w.back
@@ -64,7 +64,7 @@ func (w *work) lookBack(ctx context.Context) (*score.LookedBack, error) {
 		}
 	}
 	hasher := summary.NewHasher()
-	err = replay.LookBack(w.header, w.config, l.events, session.HindsightOptions{
+	err = replay.LookBack(w.header, w.config, &l.events, session.HindsightOptions{
 		Path: w.job.Path, Stop: ctx.Err,
 		Give: func(h session.Hindsight) error {
 			hasher.Add(h.Filtered)
@@ -72,7 +72,7 @@ func (w *work) lookBack(ctx context.Context) (*score.LookedBack, error) {
 			return errors.Join(l.smoothed.add(h.Smoothed), l.path.add(h.Path))
 		},
 	})
-	l.events = nil
+	l.events.drop()
 	if err != nil {
 		return nil, err
 	}

@@ -11,6 +11,7 @@ import (
 	"os"
 	"path/filepath"
 	"runtime"
+	"slices"
 
 	"leadline/engine/drivefile"
 	"leadline/engine/geo"
@@ -86,12 +87,13 @@ type work struct {
 	lagging *lagging // nil: nobody asks
 }
 
-func (w *work) do(ctx context.Context) error {
+func (w *work) do(ctx context.Context) (err error) {
 	u, j := w.unit, w.job
-	sum, err := w.look()
+	sum, done, err := w.look()
 	if err != nil {
 		return err
 	}
+	defer func() { err = errors.Join(err, done()) }()
 	w.config = session.Config{Space: u.drive.Map.Space, Names: u.drive.Map.Names, Suite: u.suite, MaxCells: u.cells}
 	if w.out.Run, err = w.describe(sum); err != nil {
 		return err
@@ -113,6 +115,7 @@ func (w *work) do(ctx context.Context) error {
 	if j.Elsewhere != nil {
 		return w.elsewhere(ctx)
 	}
+	defer w.back.events.drop()
 	res, stopped := w.replay(ctx)
 	var line *drivefile.Error
 	if stopped != nil && !errors.As(stopped, &line) && !errors.Is(stopped, context.Canceled) { // others do not say where
@@ -142,20 +145,24 @@ func reason(err error) string {
 	return err.Error()
 }
 
-// look reads header and truth, and the file's hash.
-func (w *work) look() (sum string, err error) {
+// look reads header and truth, and the file's hash; close gives the truth back.
+func (w *work) look() (sum string, close func() error, err error) {
 	if w.job.Elsewhere != nil {
 		w.header, sum, err = w.job.looked.at(w.unit.drive)
-		return sum, err
+		return sum, func() error { return nil }, err
 	}
-	w.header, w.truth, sum, err = w.unit.drive.look()
-	return sum, err
+	g, err := w.unit.drive.look()
+	if err != nil {
+		return "", nil, err
+	}
+	w.header, w.truth = g.Header, g.Truth
+	return g.SHA256, g.Close, nil
 }
 
-func (d *Drive) look() (drivefile.Header, []score.Truth, string, error) {
+func (d *Drive) look() (*replay.Glance, error) {
 	f, err := d.open()
 	if err != nil {
-		return drivefile.Header{}, nil, "", err
+		return nil, err
 	}
 	defer f.Close()
 	return replay.Look(f, d.Path)
@@ -295,7 +302,7 @@ func (w *work) whole(ctx context.Context) (*replay.Result, error) {
 		w.sinks.final(p)
 	}
 	if w.job.Keep {
-		w.out.Kept = &Kept{d, w.config, w.truth, &record, res}
+		w.out.Kept = &Kept{d, w.config, slices.Clone(w.truth), &record, res}
 	}
 	return res, errors.Join(stopped, err)
 }
@@ -313,6 +320,7 @@ func (w *work) begin() (err error) {
 	if w.sinks != nil {
 		w.sinks.drop()
 	}
+	w.back.events.drop()
 	w.back, w.lagging = lookback{}, nil
 	if w.sinks, err = newSinks(w); err != nil {
 		return err
