@@ -115,7 +115,7 @@ generate-clients-check: generate-clients
 # page-check compares them, and has the types checked.
 PAGE = engine/page
 PAGE_OUT ?= $(PAGE)/dist
-PAGE_PACKAGES = $(PAGE)/node_modules/preact $(PAGE)/node_modules/@preact/signals $(PAGE)/node_modules/@preact/signals-core \
+PAGE_PACKAGES = $(PAGE)/node_modules/@noble/hashes $(PAGE)/node_modules/preact $(PAGE)/node_modules/@preact/signals $(PAGE)/node_modules/@preact/signals-core \
 	$(PAGE)/node_modules/uplot $(WEB)/node_modules/@bufbuild/protobuf $(WEB)/node_modules/@connectrpc/connect $(WEB)/node_modules/@connectrpc/connect-web
 page: fetch-page fetch-clients
 	rm -rf $(PAGE_OUT)

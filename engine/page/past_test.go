@@ -2,6 +2,7 @@ package page_test
 
 import (
 	"fmt"
+	"math"
 	"os"
 	"path/filepath"
 	"strings"
@@ -9,11 +10,13 @@ import (
 	"time"
 
 	"leadline/engine/geo"
+	"leadline/engine/journal"
 	"leadline/engine/monitor"
 	"leadline/engine/server"
 	"leadline/engine/study/score"
 	"leadline/engine/study/track"
 	"leadline/engine/summary"
+	leadlinev1 "leadline/proto/leadline/v1"
 )
 
 // tableOf writes a study's table of a run to the north at 1 m/s from a place, with a radius and an
@@ -99,14 +102,7 @@ func TestPastRuns(t *testing.T) {
 	}
 
 	p := b.open(t, r.origin+"/#past", 1440, 900, false)
-	load := func(paths ...string) {
-		t.Helper()
-		var doc struct{ Root struct{ NodeID int } }
-		var input struct{ NodeID int }
-		p.do("DOM.getDocument", nil, &doc)
-		p.do("DOM.querySelector", map[string]any{"nodeId": doc.Root.NodeID, "selector": "[name=table]"}, &input)
-		p.do("DOM.setFileInputFiles", map[string]any{"nodeId": input.NodeID, "files": paths}, nil)
-	}
+	load := func(paths ...string) { p.choose("[name=table]", paths...) }
 	p.await("the drive", "document.querySelectorAll('[name=first] option').length === 3")
 	p.says(".note.bad", "onerror=alert(1)>/run.json: unexpected end of JSON input")
 	load(wrong)
@@ -154,4 +150,64 @@ func TestPastRuns(t *testing.T) {
 	p.do("Emulation.setEmulatedMedia", map[string]any{"features": []map[string]string{{"name": "prefers-color-scheme", "value": "dark"}}}, nil)
 	p.shoot("past-narrow-dark")
 	p.clean(r.origin)
+}
+
+// TestOlderDrives opens a drive that has ended and was followed by others, after the server has been
+// killed and started anew on its journal, goes through it by keyboard, and is told when it is not
+// kept any more.
+func TestOlderDrives(t *testing.T) {
+	b := startBrowser(t)
+	w, err := invented()
+	if err != nil {
+		t.Fatal(err)
+	}
+	dir := t.TempDir()
+	journalled := func(c *server.Config) {
+		c.Journal = &journal.Options{Dir: dir, FreeBytes: 1}
+		c.Build = "this"
+	}
+	r := serve(t, "127.0.0.1:0", journalled)
+	const hostile = "<img src=x onerror=alert(1)>"
+	for i, name := range []string{hostile, "second", "third"} {
+		r.drive = name
+		f := r.open(w.van, "van", nearStart(w.van))
+		r.send(f, upTo(w.van, float64(20-5*i)))
+		if _, err := f.Close(); err != nil {
+			t.Fatal(err)
+		}
+	}
+	want, err := r.calls.Trail(t.Context(), &leadlinev1.TrailRequest{Vehicle: "van", Drive: hostile})
+	if err != nil {
+		t.Fatal(err)
+	}
+	p := b.open(t, r.origin+"/#past", 390, 844, false)
+	const option = "[...document.querySelectorAll('[name=first] option')].find(e => e.innerText.startsWith('van, drive <img src=x onerror=alert(1)>, ended'))"
+	p.await("the older drive", option)
+	r.stop()
+	p.says(".connection", "The server does not answer")
+	r = serve(t, r.address, journalled)
+	p.says(".connection", "Live.")
+	p.tabTo("document.querySelector('[name=first]')")
+	for !eval[bool](p, option+".selected") {
+		p.press("ArrowDown")
+	}
+	p.says("#past-figures", "van, drive "+hostile)
+	p.tabTo("document.getElementById('past-time')")
+	p.press("End")
+	last := want.GetPoints()[len(want.GetPoints())-1]
+	p.says("#past-now", last.GetTime().AsTime().Format("15:04:05")+" UTC")
+	var metres float64
+	if _, err := fmt.Sscanf(strings.ReplaceAll(p.text("#past-figures tbody tr:nth-child(2) td"), "\u00a0", " "), "%f m", &metres); err != nil || math.Abs(metres-last.GetRadius95M()) > 0.06*metres {
+		t.Errorf("the page says %q, the server has %v", p.text("#past-figures"), last)
+	}
+	p.shoot("past-narrow-light")
+	p.audit("an older drive, narrow")
+
+	if _, err := r.calls.EraseVehicle(t.Context(), &leadlinev1.EraseVehicleRequest{Vehicle: "van"}); err != nil {
+		t.Fatal(err)
+	}
+	p.tabTo("document.querySelector('[name=first]')")
+	p.press("ArrowDown")
+	p.says("#past-trouble", "Drive \"second\" of vehicle \"van\" is not kept any more, or was never here")
+	p.clean(r.origin, "net::ERR_", "status of 4", "status of 501") // there is no folder of results
 }

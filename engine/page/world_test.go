@@ -1,6 +1,7 @@
 package page_test
 
 import (
+	"cmp"
 	"context"
 	"net"
 	"os"
@@ -131,6 +132,7 @@ type running struct {
 	calls   leadlinev1.PositionServiceClient
 	stop    func()            // at once, streams are cut off
 	shown   map[string]string // tokens by vehicle, where the server asks who feeds one
+	drive   string            // what a drive is called that is opened
 }
 
 // as is a context whose calls show a token.
@@ -188,7 +190,7 @@ func (r *running) open(d *drivefile.Drive, as string, start *wire.Start) *client
 	if start != nil {
 		h.Start = *start
 	}
-	f, err := client.Open(r.as(r.shown[as]), r.conn, client.Drive{Header: wire.FromHeader(h), Name: "drive", Batch: 20})
+	f, err := client.Open(r.as(r.shown[as]), r.conn, client.Drive{Header: wire.FromHeader(h), Name: cmp.Or(r.drive, "drive"), Batch: 20})
 	if err != nil {
 		r.t.Fatal(err)
 	}

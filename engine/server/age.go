@@ -41,6 +41,7 @@ func (s *Server) age(now time.Time) {
 		o.stop(refuse(leadlinev1.Reason_REASON_REPLACED, o.about(), "drive %q of vehicle %q has been silent for longer than the %v that anything is kept: open another drive", o.drive, vehicle, s.cfg.KeepFor))
 		delete(s.owners, vehicle)
 	}
+	s.forgetEnded(func(d *endedDrive) bool { return now.Sub(d.silentSince) >= s.cfg.KeepFor })
 	for vehicle, k := range s.kept {
 		if now.Sub(k.lastAt) >= s.cfg.KeepFor {
 			delete(s.kept, vehicle)

@@ -103,6 +103,19 @@ func (b *alarmBook) forget(vehicle string) {
 	}
 }
 
+// of returns the first records of a drive's alarms, by number.
+func (b *alarmBook) of(vehicle, drive string) (out []*leadlinev1.AlarmRecord) {
+	b.mu.Lock()
+	defer b.mu.Unlock()
+	for _, a := range b.records {
+		if a.GetVehicle() == vehicle && a.GetDrive() == drive {
+			out = append(out, a)
+		}
+	}
+	slices.SortFunc(out, func(a, b *leadlinev1.AlarmRecord) int { return cmp.Compare(a.GetNumber(), b.GetNumber()) })
+	return out[:min(len(out), maxTrailAlarms)]
+}
+
 // raise begins a record and returns its number.
 func (b *alarmBook) raise(a *leadlinev1.AlarmRecord) uint64 {
 	b.mu.Lock()

@@ -34,6 +34,7 @@ var rules = map[string]rule{
 	leadlinev1.PositionService_Traffic_FullMethodName:         {vehicle: own, dispatcher: all, analyst: all, vehicles: namedRoad},
 	leadlinev1.PositionService_FollowTraffic_FullMethodName:   {vehicle: own, dispatcher: all, analyst: all, vehicles: namedRoad},
 	leadlinev1.PositionService_Trail_FullMethodName:           {vehicle: own, dispatcher: all, analyst: all, vehicles: namedVehicle},
+	leadlinev1.PositionService_ListEndedDrives_FullMethodName: {dispatcher: all, analyst: all},
 	leadlinev1.PositionService_AddSighting_FullMethodName:     {vehicle: own, dispatcher: all, vehicles: namedVehicle},
 	leadlinev1.PositionService_SeeAlarm_FullMethodName:        {dispatcher: all},
 	leadlinev1.PositionService_ListVehicles_FullMethodName:    {dispatcher: all, analyst: all, administrator: all},
@@ -49,6 +50,7 @@ var rules = map[string]rule{
 	leadlinev1.PositionService_ListSuites_FullMethodName:      {vehicle: all, dispatcher: all, analyst: all, administrator: all},
 	leadlinev1.PositionService_DescribeSuite_FullMethodName:   {vehicle: all, dispatcher: all, analyst: all, administrator: all},
 	leadlinev1.PositionService_UploadMap_FullMethodName:       {administrator: all},
+	leadlinev1.PositionService_UploadMapPart_FullMethodName:   {administrator: all},
 }
 
 // fedVehicle is the vehicle that a stream is opened for. What follows on the

@@ -41,6 +41,7 @@ type checkpointRecord struct {
 	Posteriors uint64       `json:"posteriors"`
 	Ended      bool         `json:"ended"`
 	Recomputed bool         `json:"recomputed"`
+	Trail      []byte       `json:"trail,omitempty"` // what the drive was like so far, packed
 }
 
 // checkpointer is a session that can be written.
@@ -80,7 +81,7 @@ func (o *owner) checkpoint(done func()) {
 	c := &o.rec.checks
 	head, err := json.Marshal(checkpointRecord{
 		Version: o.srv.cfg.Version, Build: o.srv.cfg.Build, Opened: o.rec.opened, After: c.taken.Number,
-		Sequence: o.sequence, Malformed: o.malformed, Posteriors: o.posteriors, Ended: o.ended, Recomputed: o.subject.recomputed,
+		Sequence: o.sequence, Malformed: o.malformed, Posteriors: o.posteriors, Ended: o.ended, Recomputed: o.subject.recomputed, Trail: o.packTrailSoFar(),
 	})
 	if err != nil {
 		panic("server: " + err.Error()) // there is nothing in it that has no JSON
@@ -244,12 +245,17 @@ var (
 func (o *owner) goOn(from *checkpointRecord) {
 	o.sequence, o.malformed, o.posteriors, o.ended = from.Sequence, from.Malformed, from.Posteriors, from.Ended
 	o.rec.checks.taken.Number = from.After
+	if from.Trail != nil && !o.ended {
+		if err := o.trail.restore(from.Trail, from.Posteriors); err != nil {
+			o.log.Error("drive's past is lost", "error", err)
+		}
+	}
 	if p := o.sess.Latest(); p != nil {
 		o.latest.Store(p)
 		o.told([]*summary.Posterior{p}, nil)
 	}
 	if o.ended {
-		o.finished = true
+		o.finished, o.past = true, from.Trail
 		o.farewell(true, o.sess.Hash(), "the drive has ended")
 	}
 }

@@ -217,9 +217,10 @@ func (o *owner) closing() *leadlinev1.Closed {
 		o.publish(&n, o.sess.Flush())
 		o.tell(&n)
 		o.ended = true
-		o.srv.finish(o)
-		o.farewell(true, o.sess.Hash(), "the drive has ended")
 		o.clearAlarms("the drive has ended")
+		o.srv.finish(o, o.packPast())
+		o.farewell(true, o.sess.Hash(), "the drive has ended")
+		o.rec.checks.pressed.Store(true) // a checkpoint holds what it was like
 		o.log.Info("drive ended", "posteriors", o.posteriors, "accepted", accepted, "refused", refused, o.log.reasons())
 	}
 	c := &leadlinev1.Closed{

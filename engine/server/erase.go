@@ -72,6 +72,7 @@ func (s *Server) giveUp(vehicle string) (*owner, *journal.Line, error) {
 	}
 	delete(s.owners, vehicle)
 	delete(s.kept, vehicle)
+	s.forgetEnded(func(d *endedDrive) bool { return d.about.GetVehicle() == vehicle })
 	if s.journal == nil {
 		return o, nil, nil
 	}

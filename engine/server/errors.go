@@ -46,6 +46,7 @@ var reasonCodes = map[leadlinev1.Reason]codes.Code{
 	leadlinev1.Reason_REASON_BAD_MAP:         codes.InvalidArgument,
 	leadlinev1.Reason_REASON_MAP_EXISTS:      codes.AlreadyExists,
 	leadlinev1.Reason_REASON_UNKNOWN_ALARM:   codes.NotFound,
+	leadlinev1.Reason_REASON_UNKNOWN_DRIVE:   codes.NotFound,
 
 	leadlinev1.Reason_REASON_NO_IDENTITY:        codes.Unauthenticated,
 	leadlinev1.Reason_REASON_BAD_IDENTITY:       codes.Unauthenticated,

@@ -358,7 +358,7 @@ func TestFields(t *testing.T) {
 	for i := range methods.Len() {
 		method := methods.Get(i)
 		for _, base := range filled(method.Input()) {
-			if got := try(t, conn, method, proto.Clone(base.Interface()), fmt.Sprint("good", tried), false); got != nil && got.reason != leadlinev1.Reason_REASON_WRONG_SPACE && got.reason != leadlinev1.Reason_REASON_UNKNOWN_ALARM && method.Name() != "UploadMap" && method.Name() != "DescribeJournal" {
+			if got := try(t, conn, method, proto.Clone(base.Interface()), fmt.Sprint("good", tried), false); got != nil && got.reason != leadlinev1.Reason_REASON_WRONG_SPACE && got.reason != leadlinev1.Reason_REASON_UNKNOWN_ALARM && !strings.HasPrefix(string(method.Name()), "UploadMap") && method.Name() != "DescribeJournal" {
 				t.Errorf("%s: a good request is refused: %+v\n%v", method.Name(), got, base.Interface())
 			}
 			for _, m := range mutants(base) {

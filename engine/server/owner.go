@@ -61,6 +61,7 @@ type owner struct {
 	log         driveLog
 	extras      *extras // for those who follow
 	trail       trail
+	past        []byte              // what the drive was like, packed, once it has ended; srv.mu guards it
 	alarms      map[alarmKey]uint64 // on record, with their numbers
 	heard, over broadcast           // of a road: there is news; its drive has ended
 }

@@ -311,6 +311,10 @@ func wrongCalls(t *testing.T) []wrongCall {
 			_, err := put(limited(t), conn, beginning("sea", "plane a"), "plane a")
 			return saidBy(err)
 		}},
+		{leadlinev1.Reason_REASON_UNKNOWN_DRIVE, "drive vehicle", Config{}, func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
+			_, err := leadlinev1.NewPositionServiceClient(conn).Trail(limited(t), &leadlinev1.TrailRequest{Vehicle: "v", Drive: "d"})
+			return saidBy(err)
+		}},
 		{leadlinev1.Reason_REASON_UNKNOWN_RESULT, "result", Config{Results: t.TempDir()}, func(t *testing.T, _ *Server, conn *grpc.ClientConn) said {
 			_, err := leadlinev1.NewPositionServiceClient(conn).ReadResult(limited(t), &leadlinev1.ReadResultRequest{Name: "given/van"})
 			return saidBy(err)

@@ -148,6 +148,7 @@ func (s *Server) goOnWith(c *histories, found *journal.Found) error {
 			continue
 		case h.dropped:
 			j.Line(h.place).Release()
+			s.findEnded(h)
 			continue
 		case h.open == nil:
 			s.cfg.Log.Error("drive of the journal is lost", "line", h.place.String(), "why", h.lost())
@@ -161,6 +162,7 @@ func (s *Server) goOnWith(c *histories, found *journal.Found) error {
 		}
 	}
 	for _, h := range old {
+		s.findEnded(h)
 		s.dropLine(j.Line(h.place))
 	}
 	for _, h := range erasures { // a server has begun and not ended it

@@ -163,6 +163,7 @@ func (s *Server) admit(req *leadlinev1.Open, m *mapUse, sess Session, beside *se
 	}
 	vehicle := req.GetHeader().GetVehicle()
 	if old := s.owners[vehicle]; old != nil {
+		s.keepEnded(old)
 		old.stop(refuse(leadlinev1.Reason_REASON_REPLACED, old.about(), "vehicle %q has opened drive %q in place of drive %q", vehicle, req.GetDrive(), old.drive))
 	} else if len(s.owners) >= s.cfg.Limits.Vehicles && !s.makeRoom() {
 		return nil, full("vehicles", s.cfg.Limits.Vehicles, "open: the server has its %d vehicles, all of them on a drive: try later, or raise the limit", s.cfg.Limits.Vehicles)
@@ -198,6 +199,7 @@ func (s *Server) makeRoom() bool {
 	}
 	how := "was idle, and dropped to make room: open another drive"
 	if oldest.finished {
+		s.keepEnded(oldest)
 		how = "had ended, and makes room for another vehicle's"
 	}
 	oldest.stop(refuse(leadlinev1.Reason_REASON_REPLACED, oldest.about(), "drive %q of vehicle %q %s", oldest.drive, oldest.vehicle, how))
@@ -214,11 +216,11 @@ func (s *Server) leave(o *owner) {
 	o.silentSince = o.idleSince
 }
 
-// finish notes that a drive has ended.
-func (s *Server) finish(o *owner) {
+// finish notes that a drive has ended, and what it was like.
+func (s *Server) finish(o *owner, past []byte) {
 	s.mu.Lock()
 	defer s.mu.Unlock()
-	o.finished = true
+	o.finished, o.past = true, past
 }
 
 // forget takes an owner out, if it is still the vehicle's.

@@ -62,7 +62,9 @@ type Server struct {
 	closed bool // no owner may be added
 	owners map[string]*owner
 	kept   map[string]*kept // drives of the journal that cannot go on
-	ended  sync.WaitGroup   // counts owners
+	past   []*endedDrive    // that made room for others, in order
+	parts  map[string]*partsUpload
+	ended  sync.WaitGroup // counts owners
 }
 
 // New makes a server, or an error that lists what is wrong with the
@@ -98,6 +100,7 @@ func New(cfg Config) (*Server, error) {
 		readingResults: make(chan struct{}, resultsAtOnce),
 		owners:         map[string]*owner{},
 		kept:           map[string]*kept{},
+		parts:          map[string]*partsUpload{},
 		pace:           newPace(cfg.Limits.RateInAll, cfg.Limits),
 		alarms:         newAlarmBook(cfg.Now),
 		atlas:          newAtlas(cfg.Maps),

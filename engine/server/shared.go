@@ -159,6 +159,7 @@ func (s *Server) leavePartition(ctx context.Context, i int, why error) {
 			delete(s.kept, vehicle)
 		}
 	}
+	s.forgetEnded(func(d *endedDrive) bool { return s.journal.Partition(d.about.GetVehicle()) == i })
 	s.mu.Unlock()
 	for _, o := range gone {
 		select {

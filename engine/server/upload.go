@@ -28,15 +28,11 @@ type uploadStream = grpc.ClientStreamingServer[leadlinev1.UploadMapRequest, lead
 
 // UploadMap takes a map: see the .proto file.
 func (s *Server) UploadMap(stream uploadStream) error {
-	if s.uploads == nil {
-		return refuse(leadlinev1.Reason_REASON_NOT_OFFERED, nil, "upload: this server takes no maps: its operator must name a folder for them")
+	leave, err := s.mayUpload()
+	if err != nil {
+		return err
 	}
-	select {
-	case s.uploading <- struct{}{}:
-		defer func() { <-s.uploading }()
-	default:
-		return full("uploads", cap(s.uploading), "upload: the server takes %d maps at once: try later", cap(s.uploading))
-	}
+	defer leave()
 	messages := make(chan uploaded)
 	go receiveMap(stream.Context(), stream, messages) // ends with the stream's context
 	first, err := s.nextUploaded(stream.Context(), messages)
@@ -56,6 +52,19 @@ func (s *Server) UploadMap(stream uploadStream) error {
 	}
 	s.cfg.Log.Info("map uploaded", "map", m.GetName(), "fingerprint", m.GetFingerprint(), "bytes", b.GetBytes())
 	return stream.SendAndClose(&leadlinev1.UploadMapResponse{Map: m})
+}
+
+// mayUpload says why no map can be taken now. The caller must leave when it is done.
+func (s *Server) mayUpload() (leave func(), err error) {
+	if s.uploads == nil {
+		return nil, refuse(leadlinev1.Reason_REASON_NOT_OFFERED, nil, "upload: this server takes no maps: its operator must name a folder for them")
+	}
+	select {
+	case s.uploading <- struct{}{}:
+		return func() { <-s.uploading }, nil
+	default:
+		return nil, full("uploads", cap(s.uploading), "upload: the server takes %d maps at once: try later", cap(s.uploading))
+	}
 }
 
 // checkBeginning refuses what need not be sent at all.

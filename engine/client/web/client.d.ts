@@ -51,6 +51,11 @@ export class Client {
             input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/trail_pb.js").TrailRequest>;
             output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/trail_pb.js").TrailResponse>;
         };
+        listEndedDrives: {
+            methodKind: "unary";
+            input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/trail_pb.js").ListEndedDrivesRequest>;
+            output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/trail_pb.js").ListEndedDrivesResponse>;
+        };
         addSighting: {
             methodKind: "unary";
             input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/trail_pb.js").AddSightingRequest>;
@@ -125,6 +130,11 @@ export class Client {
             methodKind: "client_streaming";
             input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/map_pb.js").UploadMapRequest>;
             output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/map_pb.js").UploadMapResponse>;
+        };
+        uploadMapPart: {
+            methodKind: "unary";
+            input: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/map_pb.js").UploadMapPartRequest>;
+            output: import("@bufbuild/protobuf/codegenv2").GenMessage<import("./leadline/v1/map_pb.js").UploadMapPartResponse>;
         };
     }>>;
     patienceS: number;

@@ -7,6 +7,7 @@ import { Copy, shellWord } from "./copying";
 import { Drives } from "./drives";
 import { figure } from "./format";
 import { link } from "./live";
+import { Upload } from "./upload";
 
 const maps = signal<MapDescription[] | undefined>(undefined);
 const suites = signal<string[] | undefined>(undefined);
@@ -95,8 +96,9 @@ export function Maps() {
           </article>
         ))}
       </div>
+      <Upload maps={maps.value ?? []} uploaded={() => void load()} />
       <p>
-        A server that was started with --uploads takes further maps: <code>{command()}</code> <Copy words="Copy the command" text={command} />
+        By command: <code>{command()}</code> <Copy words="Copy the command" text={command} />
       </p>
       <h2>Suites</h2>
       {suites.value?.length === 0 && <p class="empty">The server has no suite.</p>}

@@ -2,6 +2,7 @@
 import { effect, signal } from "@preact/signals";
 import { useEffect } from "preact/hooks";
 import { MapKind, type MapDescription } from "../../client/web/leadline/v1/map_pb.js";
+import type { EndedDrive } from "../../client/web/leadline/v1/trail_pb.js";
 import type { ResultDescription } from "../../client/web/leadline/v1/results_pb.js";
 import { Code, ConnectError } from "@connectrpc/connect";
 import { calls, sentence, soon } from "./api";
@@ -39,13 +40,30 @@ function mapOf(r: Run): string {
 /** What was chosen last: an answer that comes later than the next choice is passed over. */
 const wished = new Map<typeof first, string>();
 
+/** The run that a choice stands for. */
+async function runOf(choice: string): Promise<Run | undefined> {
+  const [, kind, name] = /^(\w*) ?(.*)$/s.exec(choice)!;
+  switch (kind) {
+    case "file":
+      return files.value[name];
+    case "result":
+      return ofResult(name);
+    case "vehicle":
+      return ofVehicle(name);
+    case "drive": {
+      const [vehicle, drive] = JSON.parse(name) as [string, string];
+      return ofVehicle(vehicle, drive);
+    }
+  }
+}
+
 async function choose(which: typeof first, name: string) {
   trouble.value = "";
   wished.set(which, name);
   try {
-    const run = name === "" ? undefined : name.startsWith("file ") ? files.value[name.slice(5)] : name.startsWith("result ") ? await ofResult(name.slice(7)) : await ofVehicle(name.slice(8));
+    const run = await runOf(name);
     if (wished.get(which) !== name) return;
-    which.value = run;
+    which.value = run && { ...run, key: name };
     if (run && which === first) at.value = run.moments[0].ms;
   } catch (e) {
     if (wished.get(which) !== name) return;
@@ -69,6 +87,17 @@ async function load(list: FileList | null) {
     } catch (e) {
       trouble.value = (e as Error).message;
     }
+  }
+}
+
+/** Drives that have ended and made room for others. */
+const ended = signal<EndedDrive[]>([]);
+
+async function listEnded() {
+  try {
+    ended.value = (await calls.listEndedDrives({ pageSize: mostListed }, soon)).drives;
+  } catch {
+    ended.value = []; // the drives that are here say what is wrong
   }
 }
 
@@ -107,6 +136,7 @@ function span(): [number, number] {
 export function PastRuns() {
   useEffect(() => {
     void list();
+    void listEnded();
     void calls.listMaps({}, soon).then((m) => (maps.value = m.maps)).catch((e) => (trouble.value = sentence(e)));
   }, [link.value.state]);
   useEffect(() => {
@@ -171,15 +201,22 @@ export function PastRuns() {
 
 function Choice({ words, name, which }: { words: string; name: string; which: typeof first }) {
   const r = which.value;
-  const value = !r ? "" : files.value[r.name] === r ? "file " + r.name : (r.fingerprint === undefined ? "vehicle " : "result ") + r.name;
   return (
     <label>
       {words}{" "}
-      <select name={name} value={value} onChange={(e) => void choose(which, e.currentTarget.value)}>
+      <select name={name} value={r?.key ?? ""} onChange={(e) => void choose(which, e.currentTarget.value)}>
         <option value="">none</option>
         {order.value.map((v) => (
           <option key={v} value={"vehicle " + v}>{v}, as the server keeps it</option>
         ))}
+        {ended.value.map((d) => {
+          const key = "drive " + JSON.stringify([d.vehicle, d.drive]);
+          return (
+            <option key={key} value={key}>
+              {d.vehicle}, drive {d.drive}, ended{d.time ? `, to ${utcTime(d.time)} UTC` : ""}
+            </option>
+          );
+        })}
         {results.value.filter((q) => !q.trouble).map((q) => (
           <option key={"result " + q.name} value={"result " + q.name}>
             {q.name}{q.p95M === undefined ? "" : `, 95 % of errors within ${length(q.p95M)}`}{q.partial ? ", stopped early" : ""}

@@ -3,7 +3,7 @@ import { AlarmKind } from "../../client/web/leadline/v1/posterior_pb.js";
 import { Status } from "../../client/web/leadline/v1/posterior_pb.js";
 import { calls, soon } from "./api";
 import { figure, millis, utcTime } from "./format";
-import { alarms, fleet } from "./live";
+import { alarms } from "./live";
 import type { LonLat } from "./project";
 import { alarmWords, statusWords } from "./worry";
 
@@ -12,7 +12,7 @@ export type Moment = { ms: number; at: LonLat; located: boolean; status: string;
 
 export type Event = { ms: number; what: string };
 
-export type Run = { name: string; map: string; limitM: number; moments: Moment[]; events: Event[]; /** Whether it was on roads, where its file says so. */ roads?: boolean; fingerprint?: string };
+export type Run = { name: string; map: string; limitM: number; moments: Moment[]; events: Event[]; /** Whether it was on roads, where its file says so. */ roads?: boolean; fingerprint?: string; /** What it was chosen by. */ key?: string };
 
 /** As many moments as a run keeps: of each that go together the worst. */
 const mostMoments = 4000;
@@ -55,10 +55,10 @@ export function worst(r: Run): number {
 }
 
 /** The drive of a vehicle as the server keeps it, with its alarms. */
-export async function ofVehicle(vehicle: string): Promise<Run> {
-  const trail = await calls.trail({ vehicle }, soon);
-  if (trail.points.length === 0) throw new Error(`Nothing has been kept of ${vehicle} yet.`);
-  const p = fleet.get(vehicle)?.peek().posterior;
+export async function ofVehicle(vehicle: string, drive = ""): Promise<Run> {
+  const trail = await calls.trail({ vehicle, drive }, soon);
+  const name = drive ? `${vehicle}, drive ${drive}` : vehicle;
+  if (trail.points.length === 0) throw new Error(`Nothing has been kept of ${name}.`);
   const moments = trail.points.map((t) => ({
     ms: millis(t.time!),
     at: t.mean as LonLat,
@@ -68,10 +68,9 @@ export async function ofVehicle(vehicle: string): Promise<Run> {
     protectionM: NaN,
     errorM: NaN,
   }));
-  const events = [...alarms.peek().values()]
-    .filter((a) => a.vehicle === vehicle && a.drive === trail.drive && a.alarm?.raised && a.alarm.kind !== AlarmKind.UNSPECIFIED)
-    .map((a) => ({ ms: millis(a.alarm!.raised!), what: alarmWords(a.alarm) }));
-  return { name: vehicle, map: p?.map ?? "", limitM: p?.alertLimitM ?? 0, moments, events };
+  const known = trail.alarms.length ? trail.alarms : [...alarms.peek().values()].filter((a) => a.vehicle === vehicle && a.drive === trail.drive);
+  const events = known.filter((a) => a.alarm?.raised && a.alarm.kind !== AlarmKind.UNSPECIFIED).map((a) => ({ ms: millis(a.alarm!.raised!), what: alarmWords(a.alarm) }));
+  return { name, map: trail.map, limitM: trail.alertLimitM, moments, events };
 }
 
 /** A result of a replay in the server's folder. */

@@ -862,6 +862,238 @@ func (x *UploadMapResponse) GetMap() *MapDescription {
 	return nil
 }
 
+// UploadMapPartRequest brings a compiled map by calls one after another, for who
+// cannot send a stream, such as a browser.
+type UploadMapPartRequest struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// Types that are valid to be assigned to Message:
+	//
+	//	*UploadMapPartRequest_Beginning
+	//	*UploadMapPartRequest_Part
+	//	*UploadMapPartRequest_GiveUp
+	Message       isUploadMapPartRequest_Message `protobuf_oneof:"message"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *UploadMapPartRequest) Reset() {
+	*x = UploadMapPartRequest{}
+	mi := &file_leadline_v1_map_proto_msgTypes[12]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *UploadMapPartRequest) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*UploadMapPartRequest) ProtoMessage() {}
+
+func (x *UploadMapPartRequest) ProtoReflect() protoreflect.Message {
+	mi := &file_leadline_v1_map_proto_msgTypes[12]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use UploadMapPartRequest.ProtoReflect.Descriptor instead.
+func (*UploadMapPartRequest) Descriptor() ([]byte, []int) {
+	return file_leadline_v1_map_proto_rawDescGZIP(), []int{12}
+}
+
+func (x *UploadMapPartRequest) GetMessage() isUploadMapPartRequest_Message {
+	if x != nil {
+		return x.Message
+	}
+	return nil
+}
+
+func (x *UploadMapPartRequest) GetBeginning() *MapBeginning {
+	if x != nil {
+		if x, ok := x.Message.(*UploadMapPartRequest_Beginning); ok {
+			return x.Beginning
+		}
+	}
+	return nil
+}
+
+func (x *UploadMapPartRequest) GetPart() *MapPart {
+	if x != nil {
+		if x, ok := x.Message.(*UploadMapPartRequest_Part); ok {
+			return x.Part
+		}
+	}
+	return nil
+}
+
+func (x *UploadMapPartRequest) GetGiveUp() string {
+	if x != nil {
+		if x, ok := x.Message.(*UploadMapPartRequest_GiveUp); ok {
+			return x.GiveUp
+		}
+	}
+	return ""
+}
+
+type isUploadMapPartRequest_Message interface {
+	isUploadMapPartRequest_Message()
+}
+
+type UploadMapPartRequest_Beginning struct {
+	// First: begins an upload.
+	Beginning *MapBeginning `protobuf:"bytes,1,opt,name=beginning,proto3,oneof"`
+}
+
+type UploadMapPartRequest_Part struct {
+	// Then the file's bytes, in order. What has come is given up when nothing
+	// follows within the time that a stream may be silent.
+	Part *MapPart `protobuf:"bytes,2,opt,name=part,proto3,oneof"`
+}
+
+type UploadMapPartRequest_GiveUp struct {
+	// Gives up the upload of this name.
+	GiveUp string `protobuf:"bytes,3,opt,name=give_up,json=giveUp,proto3,oneof"`
+}
+
+func (*UploadMapPartRequest_Beginning) isUploadMapPartRequest_Message() {}
+
+func (*UploadMapPartRequest_Part) isUploadMapPartRequest_Message() {}
+
+func (*UploadMapPartRequest_GiveUp) isUploadMapPartRequest_Message() {}
+
+// MapPart is a part of a file.
+type MapPart struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// The upload's name, as the answer to the beginning has it. Required.
+	Upload string `protobuf:"bytes,1,opt,name=upload,proto3" json:"upload,omitempty"`
+	// Where in the file the part begins, bytes: the end of the one before.
+	Offset uint64 `protobuf:"varint,2,opt,name=offset,proto3" json:"offset,omitempty"`
+	// The bytes, at most 1 MiB. Required.
+	Chunk         []byte `protobuf:"bytes,3,opt,name=chunk,proto3" json:"chunk,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *MapPart) Reset() {
+	*x = MapPart{}
+	mi := &file_leadline_v1_map_proto_msgTypes[13]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *MapPart) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*MapPart) ProtoMessage() {}
+
+func (x *MapPart) ProtoReflect() protoreflect.Message {
+	mi := &file_leadline_v1_map_proto_msgTypes[13]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use MapPart.ProtoReflect.Descriptor instead.
+func (*MapPart) Descriptor() ([]byte, []int) {
+	return file_leadline_v1_map_proto_rawDescGZIP(), []int{13}
+}
+
+func (x *MapPart) GetUpload() string {
+	if x != nil {
+		return x.Upload
+	}
+	return ""
+}
+
+func (x *MapPart) GetOffset() uint64 {
+	if x != nil {
+		return x.Offset
+	}
+	return 0
+}
+
+func (x *MapPart) GetChunk() []byte {
+	if x != nil {
+		return x.Chunk
+	}
+	return nil
+}
+
+// UploadMapPartResponse says how far an upload is.
+type UploadMapPartResponse struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// Its name; only this server knows it.
+	Upload string `protobuf:"bytes,1,opt,name=upload,proto3" json:"upload,omitempty"`
+	// How much of the file has come, bytes.
+	Received uint64 `protobuf:"varint,2,opt,name=received,proto3" json:"received,omitempty"`
+	// With the last part: new drives can use the map.
+	Map           *MapDescription `protobuf:"bytes,3,opt,name=map,proto3" json:"map,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *UploadMapPartResponse) Reset() {
+	*x = UploadMapPartResponse{}
+	mi := &file_leadline_v1_map_proto_msgTypes[14]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *UploadMapPartResponse) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*UploadMapPartResponse) ProtoMessage() {}
+
+func (x *UploadMapPartResponse) ProtoReflect() protoreflect.Message {
+	mi := &file_leadline_v1_map_proto_msgTypes[14]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use UploadMapPartResponse.ProtoReflect.Descriptor instead.
+func (*UploadMapPartResponse) Descriptor() ([]byte, []int) {
+	return file_leadline_v1_map_proto_rawDescGZIP(), []int{14}
+}
+
+func (x *UploadMapPartResponse) GetUpload() string {
+	if x != nil {
+		return x.Upload
+	}
+	return ""
+}
+
+func (x *UploadMapPartResponse) GetReceived() uint64 {
+	if x != nil {
+		return x.Received
+	}
+	return 0
+}
+
+func (x *UploadMapPartResponse) GetMap() *MapDescription {
+	if x != nil {
+		return x.Map
+	}
+	return nil
+}
+
 var File_leadline_v1_map_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_map_proto_rawDesc = "" +
@@ -918,7 +1150,20 @@ const file_leadline_v1_map_proto_rawDesc = "" +
 	"\x06sha256\x18\x04 \x01(\tR\x06sha256\x12\x18\n" +
 	"\areplace\x18\x05 \x01(\bR\areplace\"B\n" +
 	"\x11UploadMapResponse\x12-\n" +
-	"\x03map\x18\x01 \x01(\v2\x1b.leadline.v1.MapDescriptionR\x03map*M\n" +
+	"\x03map\x18\x01 \x01(\v2\x1b.leadline.v1.MapDescriptionR\x03map\"\xa3\x01\n" +
+	"\x14UploadMapPartRequest\x129\n" +
+	"\tbeginning\x18\x01 \x01(\v2\x19.leadline.v1.MapBeginningH\x00R\tbeginning\x12*\n" +
+	"\x04part\x18\x02 \x01(\v2\x14.leadline.v1.MapPartH\x00R\x04part\x12\x19\n" +
+	"\agive_up\x18\x03 \x01(\tH\x00R\x06giveUpB\t\n" +
+	"\amessage\"O\n" +
+	"\aMapPart\x12\x16\n" +
+	"\x06upload\x18\x01 \x01(\tR\x06upload\x12\x16\n" +
+	"\x06offset\x18\x02 \x01(\x04R\x06offset\x12\x14\n" +
+	"\x05chunk\x18\x03 \x01(\fR\x05chunk\"z\n" +
+	"\x15UploadMapPartResponse\x12\x16\n" +
+	"\x06upload\x18\x01 \x01(\tR\x06upload\x12\x1a\n" +
+	"\breceived\x18\x02 \x01(\x04R\breceived\x12-\n" +
+	"\x03map\x18\x03 \x01(\v2\x1b.leadline.v1.MapDescriptionR\x03map*M\n" +
 	"\aMapKind\x12\x18\n" +
 	"\x14MAP_KIND_UNSPECIFIED\x10\x00\x12\x12\n" +
 	"\x0eMAP_KIND_ROADS\x10\x01\x12\x14\n" +
@@ -937,7 +1182,7 @@ func file_leadline_v1_map_proto_rawDescGZIP() []byte {
 }
 
 var file_leadline_v1_map_proto_enumTypes = make([]protoimpl.EnumInfo, 1)
-var file_leadline_v1_map_proto_msgTypes = make([]protoimpl.MessageInfo, 12)
+var file_leadline_v1_map_proto_msgTypes = make([]protoimpl.MessageInfo, 15)
 var file_leadline_v1_map_proto_goTypes = []any{
 	(MapKind)(0),                  // 0: leadline.v1.MapKind
 	(*ListMapsRequest)(nil),       // 1: leadline.v1.ListMapsRequest
@@ -952,23 +1197,29 @@ var file_leadline_v1_map_proto_goTypes = []any{
 	(*UploadMapRequest)(nil),      // 10: leadline.v1.UploadMapRequest
 	(*MapBeginning)(nil),          // 11: leadline.v1.MapBeginning
 	(*UploadMapResponse)(nil),     // 12: leadline.v1.UploadMapResponse
-	(*Position)(nil),              // 13: leadline.v1.Position
+	(*UploadMapPartRequest)(nil),  // 13: leadline.v1.UploadMapPartRequest
+	(*MapPart)(nil),               // 14: leadline.v1.MapPart
+	(*UploadMapPartResponse)(nil), // 15: leadline.v1.UploadMapPartResponse
+	(*Position)(nil),              // 16: leadline.v1.Position
 }
 var file_leadline_v1_map_proto_depIdxs = []int32{
 	5,  // 0: leadline.v1.ListMapsResponse.maps:type_name -> leadline.v1.MapDescription
 	5,  // 1: leadline.v1.DescribeMapResponse.map:type_name -> leadline.v1.MapDescription
 	0,  // 2: leadline.v1.MapDescription.kind:type_name -> leadline.v1.MapKind
-	13, // 3: leadline.v1.MapDescription.south_west:type_name -> leadline.v1.Position
-	13, // 4: leadline.v1.MapDescription.north_east:type_name -> leadline.v1.Position
+	16, // 3: leadline.v1.MapDescription.south_west:type_name -> leadline.v1.Position
+	16, // 4: leadline.v1.MapDescription.north_east:type_name -> leadline.v1.Position
 	0,  // 5: leadline.v1.DescribeSuiteRequest.kind:type_name -> leadline.v1.MapKind
 	11, // 6: leadline.v1.UploadMapRequest.beginning:type_name -> leadline.v1.MapBeginning
 	0,  // 7: leadline.v1.MapBeginning.kind:type_name -> leadline.v1.MapKind
 	5,  // 8: leadline.v1.UploadMapResponse.map:type_name -> leadline.v1.MapDescription
-	9,  // [9:9] is the sub-list for method output_type
-	9,  // [9:9] is the sub-list for method input_type
-	9,  // [9:9] is the sub-list for extension type_name
-	9,  // [9:9] is the sub-list for extension extendee
-	0,  // [0:9] is the sub-list for field type_name
+	11, // 9: leadline.v1.UploadMapPartRequest.beginning:type_name -> leadline.v1.MapBeginning
+	14, // 10: leadline.v1.UploadMapPartRequest.part:type_name -> leadline.v1.MapPart
+	5,  // 11: leadline.v1.UploadMapPartResponse.map:type_name -> leadline.v1.MapDescription
+	12, // [12:12] is the sub-list for method output_type
+	12, // [12:12] is the sub-list for method input_type
+	12, // [12:12] is the sub-list for extension type_name
+	12, // [12:12] is the sub-list for extension extendee
+	0,  // [0:12] is the sub-list for field type_name
 }
 
 func init() { file_leadline_v1_map_proto_init() }
@@ -981,13 +1232,18 @@ func file_leadline_v1_map_proto_init() {
 		(*UploadMapRequest_Beginning)(nil),
 		(*UploadMapRequest_Chunk)(nil),
 	}
+	file_leadline_v1_map_proto_msgTypes[12].OneofWrappers = []any{
+		(*UploadMapPartRequest_Beginning)(nil),
+		(*UploadMapPartRequest_Part)(nil),
+		(*UploadMapPartRequest_GiveUp)(nil),
+	}
 	type x struct{}
 	out := protoimpl.TypeBuilder{
 		File: protoimpl.DescBuilder{
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_leadline_v1_map_proto_rawDesc), len(file_leadline_v1_map_proto_rawDesc)),
 			NumEnums:      1,
-			NumMessages:   12,
+			NumMessages:   15,
 			NumExtensions: 0,
 			NumServices:   0,
 		},

@@ -112,6 +112,8 @@ const (
 	// An administrator has erased what was kept of the vehicle, its drive with it.
 	// ABORTED.
 	Reason_REASON_ERASED Reason = 48
+	// No drive of that name is kept of the vehicle. NOT_FOUND.
+	Reason_REASON_UNKNOWN_DRIVE Reason = 49
 	// There is no room to keep measurements, on the disk or within the journal's
 	// bound: send again later what was not acknowledged. RESOURCE_EXHAUSTED.
 	Reason_REASON_JOURNAL_FULL Reason = 50
@@ -170,6 +172,7 @@ var (
 		46: "REASON_NOT_ALLOWED",
 		47: "REASON_TOO_FAST",
 		48: "REASON_ERASED",
+		49: "REASON_UNKNOWN_DRIVE",
 		50: "REASON_JOURNAL_FULL",
 		51: "REASON_JOURNAL_DOWN",
 		52: "REASON_JOURNAL_DAMAGED",
@@ -214,6 +217,7 @@ var (
 		"REASON_NOT_ALLOWED":        46,
 		"REASON_TOO_FAST":           47,
 		"REASON_ERASED":             48,
+		"REASON_UNKNOWN_DRIVE":      49,
 		"REASON_JOURNAL_FULL":       50,
 		"REASON_JOURNAL_DOWN":       51,
 		"REASON_JOURNAL_DAMAGED":    52,
@@ -311,7 +315,7 @@ const file_leadline_v1_reason_proto_rawDesc = "" +
 	"\x18leadline/v1/reason.proto\x12\vleadline.v1\"P\n" +
 	"\aFailure\x12+\n" +
 	"\x06reason\x18\x01 \x01(\x0e2\x13.leadline.v1.ReasonR\x06reason\x12\x18\n" +
-	"\amessage\x18\x02 \x01(\tR\amessage*\xf2\a\n" +
+	"\amessage\x18\x02 \x01(\tR\amessage*\x8c\b\n" +
 	"\x06Reason\x12\x16\n" +
 	"\x12REASON_UNSPECIFIED\x10\x00\x12\x13\n" +
 	"\x0fREASON_UNUSABLE\x10\x01\x12\x16\n" +
@@ -348,7 +352,8 @@ const file_leadline_v1_reason_proto_rawDesc = "" +
 	"\x19REASON_IDENTITY_UNCHECKED\x10-\x12\x16\n" +
 	"\x12REASON_NOT_ALLOWED\x10.\x12\x13\n" +
 	"\x0fREASON_TOO_FAST\x10/\x12\x11\n" +
-	"\rREASON_ERASED\x100\x12\x17\n" +
+	"\rREASON_ERASED\x100\x12\x18\n" +
+	"\x14REASON_UNKNOWN_DRIVE\x101\x12\x17\n" +
 	"\x13REASON_JOURNAL_FULL\x102\x12\x17\n" +
 	"\x13REASON_JOURNAL_DOWN\x103\x12\x1a\n" +
 	"\x16REASON_JOURNAL_DAMAGED\x104\x12\x15\n" +

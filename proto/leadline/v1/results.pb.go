@@ -77,8 +77,8 @@ func (x *ListResultsRequest) GetPageToken() string {
 	return ""
 }
 
-// ListResultsResponse lists results by name. What is in the folder by then is
-// found: at most the first 10 000 are.
+// ListResultsResponse lists results folder by folder, by name. What is there by
+// then is found.
 type ListResultsResponse struct {
 	state   protoimpl.MessageState `protogen:"open.v1"`
 	Results []*ResultDescription   `protobuf:"bytes,1,rep,name=results,proto3" json:"results,omitempty"`

@@ -24,14 +24,15 @@ var File_leadline_v1_service_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_service_proto_rawDesc = "" +
 	"\n" +
-	"\x19leadline/v1/service.proto\x12\vleadline.v1\x1a\x17leadline/v1/alarm.proto\x1a\x16leadline/v1/draw.proto\x1a\x16leadline/v1/feed.proto\x1a\x17leadline/v1/fleet.proto\x1a\x18leadline/v1/follow.proto\x1a\x1aleadline/v1/forecast.proto\x1a\x15leadline/v1/map.proto\x1a\x19leadline/v1/results.proto\x1a\x19leadline/v1/traffic.proto\x1a\x17leadline/v1/trail.proto\x1a\x17leadline/v1/where.proto2\xe5\f\n" +
+	"\x19leadline/v1/service.proto\x12\vleadline.v1\x1a\x17leadline/v1/alarm.proto\x1a\x16leadline/v1/draw.proto\x1a\x16leadline/v1/feed.proto\x1a\x17leadline/v1/fleet.proto\x1a\x18leadline/v1/follow.proto\x1a\x1aleadline/v1/forecast.proto\x1a\x15leadline/v1/map.proto\x1a\x19leadline/v1/results.proto\x1a\x19leadline/v1/traffic.proto\x1a\x17leadline/v1/trail.proto\x1a\x17leadline/v1/where.proto2\x9b\x0e\n" +
 	"\x0fPositionService\x12?\n" +
 	"\x04Feed\x12\x18.leadline.v1.FeedRequest\x1a\x19.leadline.v1.FeedResponse(\x010\x01\x12>\n" +
 	"\x05Where\x12\x19.leadline.v1.WhereRequest\x1a\x1a.leadline.v1.WhereResponse\x12C\n" +
 	"\x06Follow\x12\x1a.leadline.v1.FollowRequest\x1a\x1b.leadline.v1.FollowResponse0\x01\x12D\n" +
 	"\aTraffic\x12\x1b.leadline.v1.TrafficRequest\x1a\x1c.leadline.v1.TrafficResponse\x12X\n" +
 	"\rFollowTraffic\x12!.leadline.v1.FollowTrafficRequest\x1a\".leadline.v1.FollowTrafficResponse0\x01\x12>\n" +
-	"\x05Trail\x12\x19.leadline.v1.TrailRequest\x1a\x1a.leadline.v1.TrailResponse\x12P\n" +
+	"\x05Trail\x12\x19.leadline.v1.TrailRequest\x1a\x1a.leadline.v1.TrailResponse\x12\\\n" +
+	"\x0fListEndedDrives\x12#.leadline.v1.ListEndedDrivesRequest\x1a$.leadline.v1.ListEndedDrivesResponse\x12P\n" +
 	"\vAddSighting\x12\x1f.leadline.v1.AddSightingRequest\x1a .leadline.v1.AddSightingResponse\x12G\n" +
 	"\bSeeAlarm\x12\x1c.leadline.v1.SeeAlarmRequest\x1a\x1d.leadline.v1.SeeAlarmResponse\x12S\n" +
 	"\fListVehicles\x12 .leadline.v1.ListVehiclesRequest\x1a!.leadline.v1.ListVehiclesResponse\x12G\n" +
@@ -48,7 +49,8 @@ const file_leadline_v1_service_proto_rawDesc = "" +
 	"\n" +
 	"ListSuites\x12\x1e.leadline.v1.ListSuitesRequest\x1a\x1f.leadline.v1.ListSuitesResponse\x12V\n" +
 	"\rDescribeSuite\x12!.leadline.v1.DescribeSuiteRequest\x1a\".leadline.v1.DescribeSuiteResponse\x12L\n" +
-	"\tUploadMap\x12\x1d.leadline.v1.UploadMapRequest\x1a\x1e.leadline.v1.UploadMapResponse(\x01B'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
+	"\tUploadMap\x12\x1d.leadline.v1.UploadMapRequest\x1a\x1e.leadline.v1.UploadMapResponse(\x01\x12V\n" +
+	"\rUploadMapPart\x12!.leadline.v1.UploadMapPartRequest\x1a\".leadline.v1.UploadMapPartResponseB'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3"
 
 var file_leadline_v1_service_proto_goTypes = []any{
 	(*FeedRequest)(nil),             // 0: leadline.v1.FeedRequest
@@ -57,42 +59,46 @@ var file_leadline_v1_service_proto_goTypes = []any{
 	(*TrafficRequest)(nil),          // 3: leadline.v1.TrafficRequest
 	(*FollowTrafficRequest)(nil),    // 4: leadline.v1.FollowTrafficRequest
 	(*TrailRequest)(nil),            // 5: leadline.v1.TrailRequest
-	(*AddSightingRequest)(nil),      // 6: leadline.v1.AddSightingRequest
-	(*SeeAlarmRequest)(nil),         // 7: leadline.v1.SeeAlarmRequest
-	(*ListVehiclesRequest)(nil),     // 8: leadline.v1.ListVehiclesRequest
-	(*EndDriveRequest)(nil),         // 9: leadline.v1.EndDriveRequest
-	(*EraseVehicleRequest)(nil),     // 10: leadline.v1.EraseVehicleRequest
-	(*DescribeJournalRequest)(nil),  // 11: leadline.v1.DescribeJournalRequest
-	(*ListMapsRequest)(nil),         // 12: leadline.v1.ListMapsRequest
-	(*DescribeMapRequest)(nil),      // 13: leadline.v1.DescribeMapRequest
-	(*DrawMapRequest)(nil),          // 14: leadline.v1.DrawMapRequest
-	(*ForecastRequest)(nil),         // 15: leadline.v1.ForecastRequest
-	(*ListResultsRequest)(nil),      // 16: leadline.v1.ListResultsRequest
-	(*ReadResultRequest)(nil),       // 17: leadline.v1.ReadResultRequest
-	(*ListSuitesRequest)(nil),       // 18: leadline.v1.ListSuitesRequest
-	(*DescribeSuiteRequest)(nil),    // 19: leadline.v1.DescribeSuiteRequest
-	(*UploadMapRequest)(nil),        // 20: leadline.v1.UploadMapRequest
-	(*FeedResponse)(nil),            // 21: leadline.v1.FeedResponse
-	(*WhereResponse)(nil),           // 22: leadline.v1.WhereResponse
-	(*FollowResponse)(nil),          // 23: leadline.v1.FollowResponse
-	(*TrafficResponse)(nil),         // 24: leadline.v1.TrafficResponse
-	(*FollowTrafficResponse)(nil),   // 25: leadline.v1.FollowTrafficResponse
-	(*TrailResponse)(nil),           // 26: leadline.v1.TrailResponse
-	(*AddSightingResponse)(nil),     // 27: leadline.v1.AddSightingResponse
-	(*SeeAlarmResponse)(nil),        // 28: leadline.v1.SeeAlarmResponse
-	(*ListVehiclesResponse)(nil),    // 29: leadline.v1.ListVehiclesResponse
-	(*EndDriveResponse)(nil),        // 30: leadline.v1.EndDriveResponse
-	(*EraseVehicleResponse)(nil),    // 31: leadline.v1.EraseVehicleResponse
-	(*DescribeJournalResponse)(nil), // 32: leadline.v1.DescribeJournalResponse
-	(*ListMapsResponse)(nil),        // 33: leadline.v1.ListMapsResponse
-	(*DescribeMapResponse)(nil),     // 34: leadline.v1.DescribeMapResponse
-	(*DrawMapResponse)(nil),         // 35: leadline.v1.DrawMapResponse
-	(*ForecastResponse)(nil),        // 36: leadline.v1.ForecastResponse
-	(*ListResultsResponse)(nil),     // 37: leadline.v1.ListResultsResponse
-	(*ReadResultResponse)(nil),      // 38: leadline.v1.ReadResultResponse
-	(*ListSuitesResponse)(nil),      // 39: leadline.v1.ListSuitesResponse
-	(*DescribeSuiteResponse)(nil),   // 40: leadline.v1.DescribeSuiteResponse
-	(*UploadMapResponse)(nil),       // 41: leadline.v1.UploadMapResponse
+	(*ListEndedDrivesRequest)(nil),  // 6: leadline.v1.ListEndedDrivesRequest
+	(*AddSightingRequest)(nil),      // 7: leadline.v1.AddSightingRequest
+	(*SeeAlarmRequest)(nil),         // 8: leadline.v1.SeeAlarmRequest
+	(*ListVehiclesRequest)(nil),     // 9: leadline.v1.ListVehiclesRequest
+	(*EndDriveRequest)(nil),         // 10: leadline.v1.EndDriveRequest
+	(*EraseVehicleRequest)(nil),     // 11: leadline.v1.EraseVehicleRequest
+	(*DescribeJournalRequest)(nil),  // 12: leadline.v1.DescribeJournalRequest
+	(*ListMapsRequest)(nil),         // 13: leadline.v1.ListMapsRequest
+	(*DescribeMapRequest)(nil),      // 14: leadline.v1.DescribeMapRequest
+	(*DrawMapRequest)(nil),          // 15: leadline.v1.DrawMapRequest
+	(*ForecastRequest)(nil),         // 16: leadline.v1.ForecastRequest
+	(*ListResultsRequest)(nil),      // 17: leadline.v1.ListResultsRequest
+	(*ReadResultRequest)(nil),       // 18: leadline.v1.ReadResultRequest
+	(*ListSuitesRequest)(nil),       // 19: leadline.v1.ListSuitesRequest
+	(*DescribeSuiteRequest)(nil),    // 20: leadline.v1.DescribeSuiteRequest
+	(*UploadMapRequest)(nil),        // 21: leadline.v1.UploadMapRequest
+	(*UploadMapPartRequest)(nil),    // 22: leadline.v1.UploadMapPartRequest
+	(*FeedResponse)(nil),            // 23: leadline.v1.FeedResponse
+	(*WhereResponse)(nil),           // 24: leadline.v1.WhereResponse
+	(*FollowResponse)(nil),          // 25: leadline.v1.FollowResponse
+	(*TrafficResponse)(nil),         // 26: leadline.v1.TrafficResponse
+	(*FollowTrafficResponse)(nil),   // 27: leadline.v1.FollowTrafficResponse
+	(*TrailResponse)(nil),           // 28: leadline.v1.TrailResponse
+	(*ListEndedDrivesResponse)(nil), // 29: leadline.v1.ListEndedDrivesResponse
+	(*AddSightingResponse)(nil),     // 30: leadline.v1.AddSightingResponse
+	(*SeeAlarmResponse)(nil),        // 31: leadline.v1.SeeAlarmResponse
+	(*ListVehiclesResponse)(nil),    // 32: leadline.v1.ListVehiclesResponse
+	(*EndDriveResponse)(nil),        // 33: leadline.v1.EndDriveResponse
+	(*EraseVehicleResponse)(nil),    // 34: leadline.v1.EraseVehicleResponse
+	(*DescribeJournalResponse)(nil), // 35: leadline.v1.DescribeJournalResponse
+	(*ListMapsResponse)(nil),        // 36: leadline.v1.ListMapsResponse
+	(*DescribeMapResponse)(nil),     // 37: leadline.v1.DescribeMapResponse
+	(*DrawMapResponse)(nil),         // 38: leadline.v1.DrawMapResponse
+	(*ForecastResponse)(nil),        // 39: leadline.v1.ForecastResponse
+	(*ListResultsResponse)(nil),     // 40: leadline.v1.ListResultsResponse
+	(*ReadResultResponse)(nil),      // 41: leadline.v1.ReadResultResponse
+	(*ListSuitesResponse)(nil),      // 42: leadline.v1.ListSuitesResponse
+	(*DescribeSuiteResponse)(nil),   // 43: leadline.v1.DescribeSuiteResponse
+	(*UploadMapResponse)(nil),       // 44: leadline.v1.UploadMapResponse
+	(*UploadMapPartResponse)(nil),   // 45: leadline.v1.UploadMapPartResponse
 }
 var file_leadline_v1_service_proto_depIdxs = []int32{
 	0,  // 0: leadline.v1.PositionService.Feed:input_type -> leadline.v1.FeedRequest
@@ -101,44 +107,48 @@ var file_leadline_v1_service_proto_depIdxs = []int32{
 	3,  // 3: leadline.v1.PositionService.Traffic:input_type -> leadline.v1.TrafficRequest
 	4,  // 4: leadline.v1.PositionService.FollowTraffic:input_type -> leadline.v1.FollowTrafficRequest
 	5,  // 5: leadline.v1.PositionService.Trail:input_type -> leadline.v1.TrailRequest
-	6,  // 6: leadline.v1.PositionService.AddSighting:input_type -> leadline.v1.AddSightingRequest
-	7,  // 7: leadline.v1.PositionService.SeeAlarm:input_type -> leadline.v1.SeeAlarmRequest
-	8,  // 8: leadline.v1.PositionService.ListVehicles:input_type -> leadline.v1.ListVehiclesRequest
-	9,  // 9: leadline.v1.PositionService.EndDrive:input_type -> leadline.v1.EndDriveRequest
-	10, // 10: leadline.v1.PositionService.EraseVehicle:input_type -> leadline.v1.EraseVehicleRequest
-	11, // 11: leadline.v1.PositionService.DescribeJournal:input_type -> leadline.v1.DescribeJournalRequest
-	12, // 12: leadline.v1.PositionService.ListMaps:input_type -> leadline.v1.ListMapsRequest
-	13, // 13: leadline.v1.PositionService.DescribeMap:input_type -> leadline.v1.DescribeMapRequest
-	14, // 14: leadline.v1.PositionService.DrawMap:input_type -> leadline.v1.DrawMapRequest
-	15, // 15: leadline.v1.PositionService.Forecast:input_type -> leadline.v1.ForecastRequest
-	16, // 16: leadline.v1.PositionService.ListResults:input_type -> leadline.v1.ListResultsRequest
-	17, // 17: leadline.v1.PositionService.ReadResult:input_type -> leadline.v1.ReadResultRequest
-	18, // 18: leadline.v1.PositionService.ListSuites:input_type -> leadline.v1.ListSuitesRequest
-	19, // 19: leadline.v1.PositionService.DescribeSuite:input_type -> leadline.v1.DescribeSuiteRequest
-	20, // 20: leadline.v1.PositionService.UploadMap:input_type -> leadline.v1.UploadMapRequest
-	21, // 21: leadline.v1.PositionService.Feed:output_type -> leadline.v1.FeedResponse
-	22, // 22: leadline.v1.PositionService.Where:output_type -> leadline.v1.WhereResponse
-	23, // 23: leadline.v1.PositionService.Follow:output_type -> leadline.v1.FollowResponse
-	24, // 24: leadline.v1.PositionService.Traffic:output_type -> leadline.v1.TrafficResponse
-	25, // 25: leadline.v1.PositionService.FollowTraffic:output_type -> leadline.v1.FollowTrafficResponse
-	26, // 26: leadline.v1.PositionService.Trail:output_type -> leadline.v1.TrailResponse
-	27, // 27: leadline.v1.PositionService.AddSighting:output_type -> leadline.v1.AddSightingResponse
-	28, // 28: leadline.v1.PositionService.SeeAlarm:output_type -> leadline.v1.SeeAlarmResponse
-	29, // 29: leadline.v1.PositionService.ListVehicles:output_type -> leadline.v1.ListVehiclesResponse
-	30, // 30: leadline.v1.PositionService.EndDrive:output_type -> leadline.v1.EndDriveResponse
-	31, // 31: leadline.v1.PositionService.EraseVehicle:output_type -> leadline.v1.EraseVehicleResponse
-	32, // 32: leadline.v1.PositionService.DescribeJournal:output_type -> leadline.v1.DescribeJournalResponse
-	33, // 33: leadline.v1.PositionService.ListMaps:output_type -> leadline.v1.ListMapsResponse
-	34, // 34: leadline.v1.PositionService.DescribeMap:output_type -> leadline.v1.DescribeMapResponse
-	35, // 35: leadline.v1.PositionService.DrawMap:output_type -> leadline.v1.DrawMapResponse
-	36, // 36: leadline.v1.PositionService.Forecast:output_type -> leadline.v1.ForecastResponse
-	37, // 37: leadline.v1.PositionService.ListResults:output_type -> leadline.v1.ListResultsResponse
-	38, // 38: leadline.v1.PositionService.ReadResult:output_type -> leadline.v1.ReadResultResponse
-	39, // 39: leadline.v1.PositionService.ListSuites:output_type -> leadline.v1.ListSuitesResponse
-	40, // 40: leadline.v1.PositionService.DescribeSuite:output_type -> leadline.v1.DescribeSuiteResponse
-	41, // 41: leadline.v1.PositionService.UploadMap:output_type -> leadline.v1.UploadMapResponse
-	21, // [21:42] is the sub-list for method output_type
-	0,  // [0:21] is the sub-list for method input_type
+	6,  // 6: leadline.v1.PositionService.ListEndedDrives:input_type -> leadline.v1.ListEndedDrivesRequest
+	7,  // 7: leadline.v1.PositionService.AddSighting:input_type -> leadline.v1.AddSightingRequest
+	8,  // 8: leadline.v1.PositionService.SeeAlarm:input_type -> leadline.v1.SeeAlarmRequest
+	9,  // 9: leadline.v1.PositionService.ListVehicles:input_type -> leadline.v1.ListVehiclesRequest
+	10, // 10: leadline.v1.PositionService.EndDrive:input_type -> leadline.v1.EndDriveRequest
+	11, // 11: leadline.v1.PositionService.EraseVehicle:input_type -> leadline.v1.EraseVehicleRequest
+	12, // 12: leadline.v1.PositionService.DescribeJournal:input_type -> leadline.v1.DescribeJournalRequest
+	13, // 13: leadline.v1.PositionService.ListMaps:input_type -> leadline.v1.ListMapsRequest
+	14, // 14: leadline.v1.PositionService.DescribeMap:input_type -> leadline.v1.DescribeMapRequest
+	15, // 15: leadline.v1.PositionService.DrawMap:input_type -> leadline.v1.DrawMapRequest
+	16, // 16: leadline.v1.PositionService.Forecast:input_type -> leadline.v1.ForecastRequest
+	17, // 17: leadline.v1.PositionService.ListResults:input_type -> leadline.v1.ListResultsRequest
+	18, // 18: leadline.v1.PositionService.ReadResult:input_type -> leadline.v1.ReadResultRequest
+	19, // 19: leadline.v1.PositionService.ListSuites:input_type -> leadline.v1.ListSuitesRequest
+	20, // 20: leadline.v1.PositionService.DescribeSuite:input_type -> leadline.v1.DescribeSuiteRequest
+	21, // 21: leadline.v1.PositionService.UploadMap:input_type -> leadline.v1.UploadMapRequest
+	22, // 22: leadline.v1.PositionService.UploadMapPart:input_type -> leadline.v1.UploadMapPartRequest
+	23, // 23: leadline.v1.PositionService.Feed:output_type -> leadline.v1.FeedResponse
+	24, // 24: leadline.v1.PositionService.Where:output_type -> leadline.v1.WhereResponse
+	25, // 25: leadline.v1.PositionService.Follow:output_type -> leadline.v1.FollowResponse
+	26, // 26: leadline.v1.PositionService.Traffic:output_type -> leadline.v1.TrafficResponse
+	27, // 27: leadline.v1.PositionService.FollowTraffic:output_type -> leadline.v1.FollowTrafficResponse
+	28, // 28: leadline.v1.PositionService.Trail:output_type -> leadline.v1.TrailResponse
+	29, // 29: leadline.v1.PositionService.ListEndedDrives:output_type -> leadline.v1.ListEndedDrivesResponse
+	30, // 30: leadline.v1.PositionService.AddSighting:output_type -> leadline.v1.AddSightingResponse
+	31, // 31: leadline.v1.PositionService.SeeAlarm:output_type -> leadline.v1.SeeAlarmResponse
+	32, // 32: leadline.v1.PositionService.ListVehicles:output_type -> leadline.v1.ListVehiclesResponse
+	33, // 33: leadline.v1.PositionService.EndDrive:output_type -> leadline.v1.EndDriveResponse
+	34, // 34: leadline.v1.PositionService.EraseVehicle:output_type -> leadline.v1.EraseVehicleResponse
+	35, // 35: leadline.v1.PositionService.DescribeJournal:output_type -> leadline.v1.DescribeJournalResponse
+	36, // 36: leadline.v1.PositionService.ListMaps:output_type -> leadline.v1.ListMapsResponse
+	37, // 37: leadline.v1.PositionService.DescribeMap:output_type -> leadline.v1.DescribeMapResponse
+	38, // 38: leadline.v1.PositionService.DrawMap:output_type -> leadline.v1.DrawMapResponse
+	39, // 39: leadline.v1.PositionService.Forecast:output_type -> leadline.v1.ForecastResponse
+	40, // 40: leadline.v1.PositionService.ListResults:output_type -> leadline.v1.ListResultsResponse
+	41, // 41: leadline.v1.PositionService.ReadResult:output_type -> leadline.v1.ReadResultResponse
+	42, // 42: leadline.v1.PositionService.ListSuites:output_type -> leadline.v1.ListSuitesResponse
+	43, // 43: leadline.v1.PositionService.DescribeSuite:output_type -> leadline.v1.DescribeSuiteResponse
+	44, // 44: leadline.v1.PositionService.UploadMap:output_type -> leadline.v1.UploadMapResponse
+	45, // 45: leadline.v1.PositionService.UploadMapPart:output_type -> leadline.v1.UploadMapPartResponse
+	23, // [23:46] is the sub-list for method output_type
+	0,  // [0:23] is the sub-list for method input_type
 	0,  // [0:0] is the sub-list for extension type_name
 	0,  // [0:0] is the sub-list for extension extendee
 	0,  // [0:0] is the sub-list for field type_name

@@ -25,6 +25,7 @@ const (
 	PositionService_Traffic_FullMethodName         = "/leadline.v1.PositionService/Traffic"
 	PositionService_FollowTraffic_FullMethodName   = "/leadline.v1.PositionService/FollowTraffic"
 	PositionService_Trail_FullMethodName           = "/leadline.v1.PositionService/Trail"
+	PositionService_ListEndedDrives_FullMethodName = "/leadline.v1.PositionService/ListEndedDrives"
 	PositionService_AddSighting_FullMethodName     = "/leadline.v1.PositionService/AddSighting"
 	PositionService_SeeAlarm_FullMethodName        = "/leadline.v1.PositionService/SeeAlarm"
 	PositionService_ListVehicles_FullMethodName    = "/leadline.v1.PositionService/ListVehicles"
@@ -40,6 +41,7 @@ const (
 	PositionService_ListSuites_FullMethodName      = "/leadline.v1.PositionService/ListSuites"
 	PositionService_DescribeSuite_FullMethodName   = "/leadline.v1.PositionService/DescribeSuite"
 	PositionService_UploadMap_FullMethodName       = "/leadline.v1.PositionService/UploadMap"
+	PositionService_UploadMapPart_FullMethodName   = "/leadline.v1.PositionService/UploadMapPart"
 )
 
 // PositionServiceClient is the client API for PositionService service.
@@ -71,6 +73,9 @@ type PositionServiceClient interface {
 	FollowTraffic(ctx context.Context, in *FollowTrafficRequest, opts ...grpc.CallOption) (grpc.ServerStreamingClient[FollowTrafficResponse], error)
 	// Trail says what a vehicle's drive was like so far.
 	Trail(ctx context.Context, in *TrailRequest, opts ...grpc.CallOption) (*TrailResponse, error)
+	// ListEndedDrives says which drives have ended that Trail can still tell of,
+	// beside those of ListVehicles.
+	ListEndedDrives(ctx context.Context, in *ListEndedDrivesRequest, opts ...grpc.CallOption) (*ListEndedDrivesResponse, error)
 	// AddSighting enters what somebody says of a vehicle.
 	AddSighting(ctx context.Context, in *AddSightingRequest, opts ...grpc.CallOption) (*AddSightingResponse, error)
 	// SeeAlarm says that somebody has seen an alarm.
@@ -103,6 +108,8 @@ type PositionServiceClient interface {
 	DescribeSuite(ctx context.Context, in *DescribeSuiteRequest, opts ...grpc.CallOption) (*DescribeSuiteResponse, error)
 	// UploadMap adds a map, where the server allows it.
 	UploadMap(ctx context.Context, opts ...grpc.CallOption) (grpc.ClientStreamingClient[UploadMapRequest, UploadMapResponse], error)
+	// UploadMapPart does the same by calls one after another.
+	UploadMapPart(ctx context.Context, in *UploadMapPartRequest, opts ...grpc.CallOption) (*UploadMapPartResponse, error)
 }
 
 type positionServiceClient struct {
@@ -188,6 +195,16 @@ func (c *positionServiceClient) Trail(ctx context.Context, in *TrailRequest, opt
 	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
 	out := new(TrailResponse)
 	err := c.cc.Invoke(ctx, PositionService_Trail_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *positionServiceClient) ListEndedDrives(ctx context.Context, in *ListEndedDrivesRequest, opts ...grpc.CallOption) (*ListEndedDrivesResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(ListEndedDrivesResponse)
+	err := c.cc.Invoke(ctx, PositionService_ListEndedDrives_FullMethodName, in, out, cOpts...)
 	if err != nil {
 		return nil, err
 	}
@@ -356,6 +373,16 @@ func (c *positionServiceClient) UploadMap(ctx context.Context, opts ...grpc.Call
 // This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
 type PositionService_UploadMapClient = grpc.ClientStreamingClient[UploadMapRequest, UploadMapResponse]
 
+func (c *positionServiceClient) UploadMapPart(ctx context.Context, in *UploadMapPartRequest, opts ...grpc.CallOption) (*UploadMapPartResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(UploadMapPartResponse)
+	err := c.cc.Invoke(ctx, PositionService_UploadMapPart_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
 // PositionServiceServer is the server API for PositionService service.
 // All implementations must embed UnimplementedPositionServiceServer
 // for forward compatibility.
@@ -385,6 +412,9 @@ type PositionServiceServer interface {
 	FollowTraffic(*FollowTrafficRequest, grpc.ServerStreamingServer[FollowTrafficResponse]) error
 	// Trail says what a vehicle's drive was like so far.
 	Trail(context.Context, *TrailRequest) (*TrailResponse, error)
+	// ListEndedDrives says which drives have ended that Trail can still tell of,
+	// beside those of ListVehicles.
+	ListEndedDrives(context.Context, *ListEndedDrivesRequest) (*ListEndedDrivesResponse, error)
 	// AddSighting enters what somebody says of a vehicle.
 	AddSighting(context.Context, *AddSightingRequest) (*AddSightingResponse, error)
 	// SeeAlarm says that somebody has seen an alarm.
@@ -417,6 +447,8 @@ type PositionServiceServer interface {
 	DescribeSuite(context.Context, *DescribeSuiteRequest) (*DescribeSuiteResponse, error)
 	// UploadMap adds a map, where the server allows it.
 	UploadMap(grpc.ClientStreamingServer[UploadMapRequest, UploadMapResponse]) error
+	// UploadMapPart does the same by calls one after another.
+	UploadMapPart(context.Context, *UploadMapPartRequest) (*UploadMapPartResponse, error)
 	mustEmbedUnimplementedPositionServiceServer()
 }
 
@@ -444,6 +476,9 @@ func (UnimplementedPositionServiceServer) FollowTraffic(*FollowTrafficRequest, g
 }
 func (UnimplementedPositionServiceServer) Trail(context.Context, *TrailRequest) (*TrailResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method Trail not implemented")
+}
+func (UnimplementedPositionServiceServer) ListEndedDrives(context.Context, *ListEndedDrivesRequest) (*ListEndedDrivesResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method ListEndedDrives not implemented")
 }
 func (UnimplementedPositionServiceServer) AddSighting(context.Context, *AddSightingRequest) (*AddSightingResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method AddSighting not implemented")
@@ -489,6 +524,9 @@ func (UnimplementedPositionServiceServer) DescribeSuite(context.Context, *Descri
 }
 func (UnimplementedPositionServiceServer) UploadMap(grpc.ClientStreamingServer[UploadMapRequest, UploadMapResponse]) error {
 	return status.Error(codes.Unimplemented, "method UploadMap not implemented")
+}
+func (UnimplementedPositionServiceServer) UploadMapPart(context.Context, *UploadMapPartRequest) (*UploadMapPartResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method UploadMapPart not implemented")
 }
 func (UnimplementedPositionServiceServer) mustEmbedUnimplementedPositionServiceServer() {}
 func (UnimplementedPositionServiceServer) testEmbeddedByValue()                         {}
@@ -590,6 +628,24 @@ func _PositionService_Trail_Handler(srv interface{}, ctx context.Context, dec fu
 	}
 	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
 		return srv.(PositionServiceServer).Trail(ctx, req.(*TrailRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _PositionService_ListEndedDrives_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(ListEndedDrivesRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).ListEndedDrives(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_ListEndedDrives_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).ListEndedDrives(ctx, req.(*ListEndedDrivesRequest))
 	}
 	return interceptor(ctx, in, info, handler)
 }
@@ -846,6 +902,24 @@ func _PositionService_UploadMap_Handler(srv interface{}, stream grpc.ServerStrea
 // This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
 type PositionService_UploadMapServer = grpc.ClientStreamingServer[UploadMapRequest, UploadMapResponse]
 
+func _PositionService_UploadMapPart_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(UploadMapPartRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(PositionServiceServer).UploadMapPart(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: PositionService_UploadMapPart_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(PositionServiceServer).UploadMapPart(ctx, req.(*UploadMapPartRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
 // PositionService_ServiceDesc is the grpc.ServiceDesc for PositionService service.
 // It's only intended for direct use with grpc.RegisterService,
 // and not to be introspected or modified (even as a copy)
@@ -864,6 +938,10 @@ var PositionService_ServiceDesc = grpc.ServiceDesc{
 		{
 			MethodName: "Trail",
 			Handler:    _PositionService_Trail_Handler,
+		},
+		{
+			MethodName: "ListEndedDrives",
+			Handler:    _PositionService_ListEndedDrives_Handler,
 		},
 		{
 			MethodName: "AddSighting",
@@ -916,6 +994,10 @@ var PositionService_ServiceDesc = grpc.ServiceDesc{
 		{
 			MethodName: "DescribeSuite",
 			Handler:    _PositionService_DescribeSuite_Handler,
+		},
+		{
+			MethodName: "UploadMapPart",
+			Handler:    _PositionService_UploadMapPart_Handler,
 		},
 	},
 	Streams: []grpc.StreamDesc{

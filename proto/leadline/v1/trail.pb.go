@@ -26,7 +26,10 @@ const (
 type TrailRequest struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// The vehicle's name. Required.
-	Vehicle       string `protobuf:"bytes,1,opt,name=vehicle,proto3" json:"vehicle,omitempty"`
+	Vehicle string `protobuf:"bytes,1,opt,name=vehicle,proto3" json:"vehicle,omitempty"`
+	// The drive's name, of one that has ended: see ListEndedDrives. The vehicle's
+	// present one if left out.
+	Drive         string `protobuf:"bytes,2,opt,name=drive,proto3" json:"drive,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -68,13 +71,27 @@ func (x *TrailRequest) GetVehicle() string {
 	return ""
 }
 
+func (x *TrailRequest) GetDrive() string {
+	if x != nil {
+		return x.Drive
+	}
+	return ""
+}
+
 // TrailResponse is the drive's past, thinned evenly: at most 512 points.
 type TrailResponse struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// The drive's name.
 	Drive string `protobuf:"bytes,1,opt,name=drive,proto3" json:"drive,omitempty"`
 	// By time.
-	Points        []*TrailPoint `protobuf:"bytes,2,rep,name=points,proto3" json:"points,omitempty"`
+	Points []*TrailPoint `protobuf:"bytes,2,rep,name=points,proto3" json:"points,omitempty"`
+	// The name of its map, and the map's fingerprint.
+	Map            string `protobuf:"bytes,3,opt,name=map,proto3" json:"map,omitempty"`
+	MapFingerprint string `protobuf:"bytes,4,opt,name=map_fingerprint,json=mapFingerprint,proto3" json:"map_fingerprint,omitempty"`
+	// That of its suite, m.
+	AlertLimitM float64 `protobuf:"fixed64,5,opt,name=alert_limit_m,json=alertLimitM,proto3" json:"alert_limit_m,omitempty"`
+	// Alarms of the drive, of one that has ended alone: at most the first 100.
+	Alarms        []*AlarmRecord `protobuf:"bytes,6,rep,name=alarms,proto3" json:"alarms,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -123,6 +140,225 @@ func (x *TrailResponse) GetPoints() []*TrailPoint {
 	return nil
 }
 
+func (x *TrailResponse) GetMap() string {
+	if x != nil {
+		return x.Map
+	}
+	return ""
+}
+
+func (x *TrailResponse) GetMapFingerprint() string {
+	if x != nil {
+		return x.MapFingerprint
+	}
+	return ""
+}
+
+func (x *TrailResponse) GetAlertLimitM() float64 {
+	if x != nil {
+		return x.AlertLimitM
+	}
+	return 0
+}
+
+func (x *TrailResponse) GetAlarms() []*AlarmRecord {
+	if x != nil {
+		return x.Alarms
+	}
+	return nil
+}
+
+// ListEndedDrivesRequest asks which drives have ended and made room for others.
+type ListEndedDrivesRequest struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// The most drives in an answer; 100 if left out, at most 1000.
+	PageSize uint32 `protobuf:"varint,1,opt,name=page_size,json=pageSize,proto3" json:"page_size,omitempty"`
+	// From the answer before, for those that follow.
+	PageToken     string `protobuf:"bytes,2,opt,name=page_token,json=pageToken,proto3" json:"page_token,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *ListEndedDrivesRequest) Reset() {
+	*x = ListEndedDrivesRequest{}
+	mi := &file_leadline_v1_trail_proto_msgTypes[2]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ListEndedDrivesRequest) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ListEndedDrivesRequest) ProtoMessage() {}
+
+func (x *ListEndedDrivesRequest) ProtoReflect() protoreflect.Message {
+	mi := &file_leadline_v1_trail_proto_msgTypes[2]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ListEndedDrivesRequest.ProtoReflect.Descriptor instead.
+func (*ListEndedDrivesRequest) Descriptor() ([]byte, []int) {
+	return file_leadline_v1_trail_proto_rawDescGZIP(), []int{2}
+}
+
+func (x *ListEndedDrivesRequest) GetPageSize() uint32 {
+	if x != nil {
+		return x.PageSize
+	}
+	return 0
+}
+
+func (x *ListEndedDrivesRequest) GetPageToken() string {
+	if x != nil {
+		return x.PageToken
+	}
+	return ""
+}
+
+// ListEndedDrivesResponse lists drives by vehicle, the first opened first. The
+// latest 1000 are kept, each for as long as anything is.
+type ListEndedDrivesResponse struct {
+	state  protoimpl.MessageState `protogen:"open.v1"`
+	Drives []*EndedDrive          `protobuf:"bytes,1,rep,name=drives,proto3" json:"drives,omitempty"`
+	// For the next page; empty on the last.
+	NextPageToken string `protobuf:"bytes,2,opt,name=next_page_token,json=nextPageToken,proto3" json:"next_page_token,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *ListEndedDrivesResponse) Reset() {
+	*x = ListEndedDrivesResponse{}
+	mi := &file_leadline_v1_trail_proto_msgTypes[3]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ListEndedDrivesResponse) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ListEndedDrivesResponse) ProtoMessage() {}
+
+func (x *ListEndedDrivesResponse) ProtoReflect() protoreflect.Message {
+	mi := &file_leadline_v1_trail_proto_msgTypes[3]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ListEndedDrivesResponse.ProtoReflect.Descriptor instead.
+func (*ListEndedDrivesResponse) Descriptor() ([]byte, []int) {
+	return file_leadline_v1_trail_proto_rawDescGZIP(), []int{3}
+}
+
+func (x *ListEndedDrivesResponse) GetDrives() []*EndedDrive {
+	if x != nil {
+		return x.Drives
+	}
+	return nil
+}
+
+func (x *ListEndedDrivesResponse) GetNextPageToken() string {
+	if x != nil {
+		return x.NextPageToken
+	}
+	return ""
+}
+
+// EndedDrive is a drive that has ended.
+type EndedDrive struct {
+	state   protoimpl.MessageState `protogen:"open.v1"`
+	Vehicle string                 `protobuf:"bytes,1,opt,name=vehicle,proto3" json:"vehicle,omitempty"`
+	// The drive's name.
+	Drive string `protobuf:"bytes,2,opt,name=drive,proto3" json:"drive,omitempty"`
+	// The name of its map.
+	Map string `protobuf:"bytes,3,opt,name=map,proto3" json:"map,omitempty"`
+	// When it was opened, by the server's clock, UTC.
+	OpenedAt *timestamppb.Timestamp `protobuf:"bytes,4,opt,name=opened_at,json=openedAt,proto3" json:"opened_at,omitempty"`
+	// Time of its last posterior, UTC. Not set if there was none.
+	Time          *timestamppb.Timestamp `protobuf:"bytes,5,opt,name=time,proto3" json:"time,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *EndedDrive) Reset() {
+	*x = EndedDrive{}
+	mi := &file_leadline_v1_trail_proto_msgTypes[4]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *EndedDrive) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*EndedDrive) ProtoMessage() {}
+
+func (x *EndedDrive) ProtoReflect() protoreflect.Message {
+	mi := &file_leadline_v1_trail_proto_msgTypes[4]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use EndedDrive.ProtoReflect.Descriptor instead.
+func (*EndedDrive) Descriptor() ([]byte, []int) {
+	return file_leadline_v1_trail_proto_rawDescGZIP(), []int{4}
+}
+
+func (x *EndedDrive) GetVehicle() string {
+	if x != nil {
+		return x.Vehicle
+	}
+	return ""
+}
+
+func (x *EndedDrive) GetDrive() string {
+	if x != nil {
+		return x.Drive
+	}
+	return ""
+}
+
+func (x *EndedDrive) GetMap() string {
+	if x != nil {
+		return x.Map
+	}
+	return ""
+}
+
+func (x *EndedDrive) GetOpenedAt() *timestamppb.Timestamp {
+	if x != nil {
+		return x.OpenedAt
+	}
+	return nil
+}
+
+func (x *EndedDrive) GetTime() *timestamppb.Timestamp {
+	if x != nil {
+		return x.Time
+	}
+	return nil
+}
+
 // TrailPoint is what a figure over time needs of a posterior.
 type TrailPoint struct {
 	state  protoimpl.MessageState `protogen:"open.v1"`
@@ -140,7 +376,7 @@ type TrailPoint struct {
 
 func (x *TrailPoint) Reset() {
 	*x = TrailPoint{}
-	mi := &file_leadline_v1_trail_proto_msgTypes[2]
+	mi := &file_leadline_v1_trail_proto_msgTypes[5]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -152,7 +388,7 @@ func (x *TrailPoint) String() string {
 func (*TrailPoint) ProtoMessage() {}
 
 func (x *TrailPoint) ProtoReflect() protoreflect.Message {
-	mi := &file_leadline_v1_trail_proto_msgTypes[2]
+	mi := &file_leadline_v1_trail_proto_msgTypes[5]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -165,7 +401,7 @@ func (x *TrailPoint) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use TrailPoint.ProtoReflect.Descriptor instead.
 func (*TrailPoint) Descriptor() ([]byte, []int) {
-	return file_leadline_v1_trail_proto_rawDescGZIP(), []int{2}
+	return file_leadline_v1_trail_proto_rawDescGZIP(), []int{5}
 }
 
 func (x *TrailPoint) GetTime() *timestamppb.Timestamp {
@@ -224,7 +460,7 @@ type RecentMeasurement struct {
 
 func (x *RecentMeasurement) Reset() {
 	*x = RecentMeasurement{}
-	mi := &file_leadline_v1_trail_proto_msgTypes[3]
+	mi := &file_leadline_v1_trail_proto_msgTypes[6]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -236,7 +472,7 @@ func (x *RecentMeasurement) String() string {
 func (*RecentMeasurement) ProtoMessage() {}
 
 func (x *RecentMeasurement) ProtoReflect() protoreflect.Message {
-	mi := &file_leadline_v1_trail_proto_msgTypes[3]
+	mi := &file_leadline_v1_trail_proto_msgTypes[6]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -249,7 +485,7 @@ func (x *RecentMeasurement) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use RecentMeasurement.ProtoReflect.Descriptor instead.
 func (*RecentMeasurement) Descriptor() ([]byte, []int) {
-	return file_leadline_v1_trail_proto_rawDescGZIP(), []int{3}
+	return file_leadline_v1_trail_proto_rawDescGZIP(), []int{6}
 }
 
 func (x *RecentMeasurement) GetMeasurement() *SensorMeasurement {
@@ -285,7 +521,7 @@ type AddSightingRequest struct {
 
 func (x *AddSightingRequest) Reset() {
 	*x = AddSightingRequest{}
-	mi := &file_leadline_v1_trail_proto_msgTypes[4]
+	mi := &file_leadline_v1_trail_proto_msgTypes[7]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -297,7 +533,7 @@ func (x *AddSightingRequest) String() string {
 func (*AddSightingRequest) ProtoMessage() {}
 
 func (x *AddSightingRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_leadline_v1_trail_proto_msgTypes[4]
+	mi := &file_leadline_v1_trail_proto_msgTypes[7]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -310,7 +546,7 @@ func (x *AddSightingRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use AddSightingRequest.ProtoReflect.Descriptor instead.
 func (*AddSightingRequest) Descriptor() ([]byte, []int) {
-	return file_leadline_v1_trail_proto_rawDescGZIP(), []int{4}
+	return file_leadline_v1_trail_proto_rawDescGZIP(), []int{7}
 }
 
 func (x *AddSightingRequest) GetVehicle() string {
@@ -357,7 +593,7 @@ type AddSightingResponse struct {
 
 func (x *AddSightingResponse) Reset() {
 	*x = AddSightingResponse{}
-	mi := &file_leadline_v1_trail_proto_msgTypes[5]
+	mi := &file_leadline_v1_trail_proto_msgTypes[8]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -369,7 +605,7 @@ func (x *AddSightingResponse) String() string {
 func (*AddSightingResponse) ProtoMessage() {}
 
 func (x *AddSightingResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_leadline_v1_trail_proto_msgTypes[5]
+	mi := &file_leadline_v1_trail_proto_msgTypes[8]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -382,7 +618,7 @@ func (x *AddSightingResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use AddSightingResponse.ProtoReflect.Descriptor instead.
 func (*AddSightingResponse) Descriptor() ([]byte, []int) {
-	return file_leadline_v1_trail_proto_rawDescGZIP(), []int{5}
+	return file_leadline_v1_trail_proto_rawDescGZIP(), []int{8}
 }
 
 func (x *AddSightingResponse) GetMeasurement() *SensorMeasurement {
@@ -417,12 +653,31 @@ var File_leadline_v1_trail_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_trail_proto_rawDesc = "" +
 	"\n" +
-	"\x17leadline/v1/trail.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x16leadline/v1/feed.proto\x1a\x1dleadline/v1/measurement.proto\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\"(\n" +
+	"\x17leadline/v1/trail.proto\x12\vleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/alarm.proto\x1a\x16leadline/v1/feed.proto\x1a\x1dleadline/v1/measurement.proto\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\">\n" +
 	"\fTrailRequest\x12\x18\n" +
-	"\avehicle\x18\x01 \x01(\tR\avehicle\"V\n" +
+	"\avehicle\x18\x01 \x01(\tR\avehicle\x12\x14\n" +
+	"\x05drive\x18\x02 \x01(\tR\x05drive\"\xe7\x01\n" +
 	"\rTrailResponse\x12\x14\n" +
 	"\x05drive\x18\x01 \x01(\tR\x05drive\x12/\n" +
-	"\x06points\x18\x02 \x03(\v2\x17.leadline.v1.TrailPointR\x06points\"\x8b\x02\n" +
+	"\x06points\x18\x02 \x03(\v2\x17.leadline.v1.TrailPointR\x06points\x12\x10\n" +
+	"\x03map\x18\x03 \x01(\tR\x03map\x12'\n" +
+	"\x0fmap_fingerprint\x18\x04 \x01(\tR\x0emapFingerprint\x12\"\n" +
+	"\ralert_limit_m\x18\x05 \x01(\x01R\valertLimitM\x120\n" +
+	"\x06alarms\x18\x06 \x03(\v2\x18.leadline.v1.AlarmRecordR\x06alarms\"T\n" +
+	"\x16ListEndedDrivesRequest\x12\x1b\n" +
+	"\tpage_size\x18\x01 \x01(\rR\bpageSize\x12\x1d\n" +
+	"\n" +
+	"page_token\x18\x02 \x01(\tR\tpageToken\"r\n" +
+	"\x17ListEndedDrivesResponse\x12/\n" +
+	"\x06drives\x18\x01 \x03(\v2\x17.leadline.v1.EndedDriveR\x06drives\x12&\n" +
+	"\x0fnext_page_token\x18\x02 \x01(\tR\rnextPageToken\"\xb7\x01\n" +
+	"\n" +
+	"EndedDrive\x12\x18\n" +
+	"\avehicle\x18\x01 \x01(\tR\avehicle\x12\x14\n" +
+	"\x05drive\x18\x02 \x01(\tR\x05drive\x12\x10\n" +
+	"\x03map\x18\x03 \x01(\tR\x03map\x127\n" +
+	"\topened_at\x18\x04 \x01(\v2\x1a.google.protobuf.TimestampR\bopenedAt\x12.\n" +
+	"\x04time\x18\x05 \x01(\v2\x1a.google.protobuf.TimestampR\x04time\"\x8b\x02\n" +
 	"\n" +
 	"TrailPoint\x12.\n" +
 	"\x04time\x18\x01 \x01(\v2\x1a.google.protobuf.TimestampR\x04time\x12+\n" +
@@ -458,42 +713,50 @@ func file_leadline_v1_trail_proto_rawDescGZIP() []byte {
 	return file_leadline_v1_trail_proto_rawDescData
 }
 
-var file_leadline_v1_trail_proto_msgTypes = make([]protoimpl.MessageInfo, 6)
+var file_leadline_v1_trail_proto_msgTypes = make([]protoimpl.MessageInfo, 9)
 var file_leadline_v1_trail_proto_goTypes = []any{
-	(*TrailRequest)(nil),          // 0: leadline.v1.TrailRequest
-	(*TrailResponse)(nil),         // 1: leadline.v1.TrailResponse
-	(*TrailPoint)(nil),            // 2: leadline.v1.TrailPoint
-	(*RecentMeasurement)(nil),     // 3: leadline.v1.RecentMeasurement
-	(*AddSightingRequest)(nil),    // 4: leadline.v1.AddSightingRequest
-	(*AddSightingResponse)(nil),   // 5: leadline.v1.AddSightingResponse
-	(*timestamppb.Timestamp)(nil), // 6: google.protobuf.Timestamp
-	(Status)(0),                   // 7: leadline.v1.Status
-	(*Position)(nil),              // 8: leadline.v1.Position
-	(*Nuisance)(nil),              // 9: leadline.v1.Nuisance
-	(*SensorMeasurement)(nil),     // 10: leadline.v1.SensorMeasurement
-	(*Refusal)(nil),               // 11: leadline.v1.Refusal
-	(*Sighting)(nil),              // 12: leadline.v1.Sighting
-	(*Posterior)(nil),             // 13: leadline.v1.Posterior
+	(*TrailRequest)(nil),            // 0: leadline.v1.TrailRequest
+	(*TrailResponse)(nil),           // 1: leadline.v1.TrailResponse
+	(*ListEndedDrivesRequest)(nil),  // 2: leadline.v1.ListEndedDrivesRequest
+	(*ListEndedDrivesResponse)(nil), // 3: leadline.v1.ListEndedDrivesResponse
+	(*EndedDrive)(nil),              // 4: leadline.v1.EndedDrive
+	(*TrailPoint)(nil),              // 5: leadline.v1.TrailPoint
+	(*RecentMeasurement)(nil),       // 6: leadline.v1.RecentMeasurement
+	(*AddSightingRequest)(nil),      // 7: leadline.v1.AddSightingRequest
+	(*AddSightingResponse)(nil),     // 8: leadline.v1.AddSightingResponse
+	(*AlarmRecord)(nil),             // 9: leadline.v1.AlarmRecord
+	(*timestamppb.Timestamp)(nil),   // 10: google.protobuf.Timestamp
+	(Status)(0),                     // 11: leadline.v1.Status
+	(*Position)(nil),                // 12: leadline.v1.Position
+	(*Nuisance)(nil),                // 13: leadline.v1.Nuisance
+	(*SensorMeasurement)(nil),       // 14: leadline.v1.SensorMeasurement
+	(*Refusal)(nil),                 // 15: leadline.v1.Refusal
+	(*Sighting)(nil),                // 16: leadline.v1.Sighting
+	(*Posterior)(nil),               // 17: leadline.v1.Posterior
 }
 var file_leadline_v1_trail_proto_depIdxs = []int32{
-	2,  // 0: leadline.v1.TrailResponse.points:type_name -> leadline.v1.TrailPoint
-	6,  // 1: leadline.v1.TrailPoint.time:type_name -> google.protobuf.Timestamp
-	7,  // 2: leadline.v1.TrailPoint.status:type_name -> leadline.v1.Status
-	8,  // 3: leadline.v1.TrailPoint.mean:type_name -> leadline.v1.Position
-	9,  // 4: leadline.v1.TrailPoint.nuisances:type_name -> leadline.v1.Nuisance
-	10, // 5: leadline.v1.RecentMeasurement.measurement:type_name -> leadline.v1.SensorMeasurement
-	11, // 6: leadline.v1.RecentMeasurement.refusal:type_name -> leadline.v1.Refusal
-	6,  // 7: leadline.v1.AddSightingRequest.time:type_name -> google.protobuf.Timestamp
-	12, // 8: leadline.v1.AddSightingRequest.sighting:type_name -> leadline.v1.Sighting
-	10, // 9: leadline.v1.AddSightingResponse.measurement:type_name -> leadline.v1.SensorMeasurement
-	11, // 10: leadline.v1.AddSightingResponse.refusal:type_name -> leadline.v1.Refusal
-	13, // 11: leadline.v1.AddSightingResponse.before:type_name -> leadline.v1.Posterior
-	13, // 12: leadline.v1.AddSightingResponse.after:type_name -> leadline.v1.Posterior
-	13, // [13:13] is the sub-list for method output_type
-	13, // [13:13] is the sub-list for method input_type
-	13, // [13:13] is the sub-list for extension type_name
-	13, // [13:13] is the sub-list for extension extendee
-	0,  // [0:13] is the sub-list for field type_name
+	5,  // 0: leadline.v1.TrailResponse.points:type_name -> leadline.v1.TrailPoint
+	9,  // 1: leadline.v1.TrailResponse.alarms:type_name -> leadline.v1.AlarmRecord
+	4,  // 2: leadline.v1.ListEndedDrivesResponse.drives:type_name -> leadline.v1.EndedDrive
+	10, // 3: leadline.v1.EndedDrive.opened_at:type_name -> google.protobuf.Timestamp
+	10, // 4: leadline.v1.EndedDrive.time:type_name -> google.protobuf.Timestamp
+	10, // 5: leadline.v1.TrailPoint.time:type_name -> google.protobuf.Timestamp
+	11, // 6: leadline.v1.TrailPoint.status:type_name -> leadline.v1.Status
+	12, // 7: leadline.v1.TrailPoint.mean:type_name -> leadline.v1.Position
+	13, // 8: leadline.v1.TrailPoint.nuisances:type_name -> leadline.v1.Nuisance
+	14, // 9: leadline.v1.RecentMeasurement.measurement:type_name -> leadline.v1.SensorMeasurement
+	15, // 10: leadline.v1.RecentMeasurement.refusal:type_name -> leadline.v1.Refusal
+	10, // 11: leadline.v1.AddSightingRequest.time:type_name -> google.protobuf.Timestamp
+	16, // 12: leadline.v1.AddSightingRequest.sighting:type_name -> leadline.v1.Sighting
+	14, // 13: leadline.v1.AddSightingResponse.measurement:type_name -> leadline.v1.SensorMeasurement
+	15, // 14: leadline.v1.AddSightingResponse.refusal:type_name -> leadline.v1.Refusal
+	17, // 15: leadline.v1.AddSightingResponse.before:type_name -> leadline.v1.Posterior
+	17, // 16: leadline.v1.AddSightingResponse.after:type_name -> leadline.v1.Posterior
+	17, // [17:17] is the sub-list for method output_type
+	17, // [17:17] is the sub-list for method input_type
+	17, // [17:17] is the sub-list for extension type_name
+	17, // [17:17] is the sub-list for extension extendee
+	0,  // [0:17] is the sub-list for field type_name
 }
 
 func init() { file_leadline_v1_trail_proto_init() }
@@ -501,6 +764,7 @@ func file_leadline_v1_trail_proto_init() {
 	if File_leadline_v1_trail_proto != nil {
 		return
 	}
+	file_leadline_v1_alarm_proto_init()
 	file_leadline_v1_feed_proto_init()
 	file_leadline_v1_measurement_proto_init()
 	file_leadline_v1_place_proto_init()
@@ -511,7 +775,7 @@ func file_leadline_v1_trail_proto_init() {
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_leadline_v1_trail_proto_rawDesc), len(file_leadline_v1_trail_proto_rawDesc)),
 			NumEnums:      0,
-			NumMessages:   6,
+			NumMessages:   9,
 			NumExtensions: 0,
 			NumServices:   0,
 		},

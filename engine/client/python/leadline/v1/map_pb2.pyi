@@ -116,6 +116,36 @@ class MapDescription(_message.Message):
     vertical_datum: str
     def __init__(self, name: _Optional[str] = ..., fingerprint: _Optional[str] = ..., kind: _Optional[_Union[MapKind, str]] = ..., south_west: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., north_east: _Optional[_Union[_place_pb2.Position, _Mapping]] = ..., source: _Optional[str] = ..., licence: _Optional[str] = ..., vertical_datum: _Optional[str] = ..., frame: _Optional[str] = ..., edges: _Optional[int] = ..., length_m: _Optional[float] = ..., columns: _Optional[int] = ..., rows: _Optional[int] = ..., spacing_m: _Optional[float] = ..., height_sigma_m: _Optional[float] = ..., sessions: _Optional[int] = ..., older_sessions: _Optional[int] = ...) -> None: ...
 
+class MapPart(_message.Message):
+    __slots__ = ["chunk", "offset", "upload"]
+    CHUNK_FIELD_NUMBER: _ClassVar[int]
+    OFFSET_FIELD_NUMBER: _ClassVar[int]
+    UPLOAD_FIELD_NUMBER: _ClassVar[int]
+    chunk: bytes
+    offset: int
+    upload: str
+    def __init__(self, upload: _Optional[str] = ..., offset: _Optional[int] = ..., chunk: _Optional[bytes] = ...) -> None: ...
+
+class UploadMapPartRequest(_message.Message):
+    __slots__ = ["beginning", "give_up", "part"]
+    BEGINNING_FIELD_NUMBER: _ClassVar[int]
+    GIVE_UP_FIELD_NUMBER: _ClassVar[int]
+    PART_FIELD_NUMBER: _ClassVar[int]
+    beginning: MapBeginning
+    give_up: str
+    part: MapPart
+    def __init__(self, beginning: _Optional[_Union[MapBeginning, _Mapping]] = ..., part: _Optional[_Union[MapPart, _Mapping]] = ..., give_up: _Optional[str] = ...) -> None: ...
+
+class UploadMapPartResponse(_message.Message):
+    __slots__ = ["map", "received", "upload"]
+    MAP_FIELD_NUMBER: _ClassVar[int]
+    RECEIVED_FIELD_NUMBER: _ClassVar[int]
+    UPLOAD_FIELD_NUMBER: _ClassVar[int]
+    map: MapDescription
+    received: int
+    upload: str
+    def __init__(self, upload: _Optional[str] = ..., received: _Optional[int] = ..., map: _Optional[_Union[MapDescription, _Mapping]] = ...) -> None: ...
+
 class UploadMapRequest(_message.Message):
     __slots__ = ["beginning", "chunk"]
     BEGINNING_FIELD_NUMBER: _ClassVar[int]

@@ -12,13 +12,14 @@ _sym_db = _symbol_database.Default()
 
 
 from google.protobuf import timestamp_pb2 as google_dot_protobuf_dot_timestamp__pb2
+from leadline.v1 import alarm_pb2 as leadline_dot_v1_dot_alarm__pb2
 from leadline.v1 import feed_pb2 as leadline_dot_v1_dot_feed__pb2
 from leadline.v1 import measurement_pb2 as leadline_dot_v1_dot_measurement__pb2
 from leadline.v1 import place_pb2 as leadline_dot_v1_dot_place__pb2
 from leadline.v1 import posterior_pb2 as leadline_dot_v1_dot_posterior__pb2
 
 
-DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x17leadline/v1/trail.proto\x12\x0bleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x16leadline/v1/feed.proto\x1a\x1dleadline/v1/measurement.proto\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\"(\n\x0cTrailRequest\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\"V\n\rTrailResponse\x12\x14\n\x05\x64rive\x18\x01 \x01(\tR\x05\x64rive\x12/\n\x06points\x18\x02 \x03(\x0b\x32\x17.leadline.v1.TrailPointR\x06points\"\x8b\x02\n\nTrailPoint\x12.\n\x04time\x18\x01 \x01(\x0b\x32\x1a.google.protobuf.TimestampR\x04time\x12+\n\x06status\x18\x02 \x01(\x0e\x32\x13.leadline.v1.StatusR\x06status\x12)\n\x04mean\x18\x03 \x01(\x0b\x32\x15.leadline.v1.PositionR\x04mean\x12\x1d\n\nradius95_m\x18\x04 \x01(\x01R\tradius95M\x12!\n\x0clog_evidence\x18\x05 \x01(\x01R\x0blogEvidence\x12\x33\n\tnuisances\x18\x06 \x03(\x0b\x32\x15.leadline.v1.NuisanceR\tnuisances\"\x85\x01\n\x11RecentMeasurement\x12@\n\x0bmeasurement\x18\x01 \x01(\x0b\x32\x1e.leadline.v1.SensorMeasurementR\x0bmeasurement\x12.\n\x07refusal\x18\x02 \x01(\x0b\x32\x14.leadline.v1.RefusalR\x07refusal\"\xa7\x01\n\x12\x41\x64\x64SightingRequest\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\x12\x14\n\x05\x64rive\x18\x02 \x01(\tR\x05\x64rive\x12.\n\x04time\x18\x03 \x01(\x0b\x32\x1a.google.protobuf.TimestampR\x04time\x12\x31\n\x08sighting\x18\x04 \x01(\x0b\x32\x15.leadline.v1.SightingR\x08sighting\"\xe5\x01\n\x13\x41\x64\x64SightingResponse\x12@\n\x0bmeasurement\x18\x01 \x01(\x0b\x32\x1e.leadline.v1.SensorMeasurementR\x0bmeasurement\x12.\n\x07refusal\x18\x02 \x01(\x0b\x32\x14.leadline.v1.RefusalR\x07refusal\x12.\n\x06\x62\x65\x66ore\x18\x03 \x01(\x0b\x32\x16.leadline.v1.PosteriorR\x06\x62\x65\x66ore\x12,\n\x05\x61\x66ter\x18\x04 \x01(\x0b\x32\x16.leadline.v1.PosteriorR\x05\x61\x66terB\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
+DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x17leadline/v1/trail.proto\x12\x0bleadline.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17leadline/v1/alarm.proto\x1a\x16leadline/v1/feed.proto\x1a\x1dleadline/v1/measurement.proto\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\">\n\x0cTrailRequest\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\x12\x14\n\x05\x64rive\x18\x02 \x01(\tR\x05\x64rive\"\xe7\x01\n\rTrailResponse\x12\x14\n\x05\x64rive\x18\x01 \x01(\tR\x05\x64rive\x12/\n\x06points\x18\x02 \x03(\x0b\x32\x17.leadline.v1.TrailPointR\x06points\x12\x10\n\x03map\x18\x03 \x01(\tR\x03map\x12\'\n\x0fmap_fingerprint\x18\x04 \x01(\tR\x0emapFingerprint\x12\"\n\ralert_limit_m\x18\x05 \x01(\x01R\x0b\x61lertLimitM\x12\x30\n\x06\x61larms\x18\x06 \x03(\x0b\x32\x18.leadline.v1.AlarmRecordR\x06\x61larms\"T\n\x16ListEndedDrivesRequest\x12\x1b\n\tpage_size\x18\x01 \x01(\rR\x08pageSize\x12\x1d\n\npage_token\x18\x02 \x01(\tR\tpageToken\"r\n\x17ListEndedDrivesResponse\x12/\n\x06\x64rives\x18\x01 \x03(\x0b\x32\x17.leadline.v1.EndedDriveR\x06\x64rives\x12&\n\x0fnext_page_token\x18\x02 \x01(\tR\rnextPageToken\"\xb7\x01\n\nEndedDrive\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\x12\x14\n\x05\x64rive\x18\x02 \x01(\tR\x05\x64rive\x12\x10\n\x03map\x18\x03 \x01(\tR\x03map\x12\x37\n\topened_at\x18\x04 \x01(\x0b\x32\x1a.google.protobuf.TimestampR\x08openedAt\x12.\n\x04time\x18\x05 \x01(\x0b\x32\x1a.google.protobuf.TimestampR\x04time\"\x8b\x02\n\nTrailPoint\x12.\n\x04time\x18\x01 \x01(\x0b\x32\x1a.google.protobuf.TimestampR\x04time\x12+\n\x06status\x18\x02 \x01(\x0e\x32\x13.leadline.v1.StatusR\x06status\x12)\n\x04mean\x18\x03 \x01(\x0b\x32\x15.leadline.v1.PositionR\x04mean\x12\x1d\n\nradius95_m\x18\x04 \x01(\x01R\tradius95M\x12!\n\x0clog_evidence\x18\x05 \x01(\x01R\x0blogEvidence\x12\x33\n\tnuisances\x18\x06 \x03(\x0b\x32\x15.leadline.v1.NuisanceR\tnuisances\"\x85\x01\n\x11RecentMeasurement\x12@\n\x0bmeasurement\x18\x01 \x01(\x0b\x32\x1e.leadline.v1.SensorMeasurementR\x0bmeasurement\x12.\n\x07refusal\x18\x02 \x01(\x0b\x32\x14.leadline.v1.RefusalR\x07refusal\"\xa7\x01\n\x12\x41\x64\x64SightingRequest\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\x12\x14\n\x05\x64rive\x18\x02 \x01(\tR\x05\x64rive\x12.\n\x04time\x18\x03 \x01(\x0b\x32\x1a.google.protobuf.TimestampR\x04time\x12\x31\n\x08sighting\x18\x04 \x01(\x0b\x32\x15.leadline.v1.SightingR\x08sighting\"\xe5\x01\n\x13\x41\x64\x64SightingResponse\x12@\n\x0bmeasurement\x18\x01 \x01(\x0b\x32\x1e.leadline.v1.SensorMeasurementR\x0bmeasurement\x12.\n\x07refusal\x18\x02 \x01(\x0b\x32\x14.leadline.v1.RefusalR\x07refusal\x12.\n\x06\x62\x65\x66ore\x18\x03 \x01(\x0b\x32\x16.leadline.v1.PosteriorR\x06\x62\x65\x66ore\x12,\n\x05\x61\x66ter\x18\x04 \x01(\x0b\x32\x16.leadline.v1.PosteriorR\x05\x61\x66terB\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
 
 _builder.BuildMessageAndEnumDescriptors(DESCRIPTOR, globals())
 _builder.BuildTopDescriptorsAndMessages(DESCRIPTOR, 'leadline.v1.trail_pb2', globals())
@@ -26,16 +27,22 @@ if _descriptor._USE_C_DESCRIPTORS == False:
 
   DESCRIPTOR._options = None
   DESCRIPTOR._serialized_options = b'Z%leadline/proto/leadline/v1;leadlinev1'
-  _TRAILREQUEST._serialized_start=182
-  _TRAILREQUEST._serialized_end=222
-  _TRAILRESPONSE._serialized_start=224
-  _TRAILRESPONSE._serialized_end=310
-  _TRAILPOINT._serialized_start=313
-  _TRAILPOINT._serialized_end=580
-  _RECENTMEASUREMENT._serialized_start=583
-  _RECENTMEASUREMENT._serialized_end=716
-  _ADDSIGHTINGREQUEST._serialized_start=719
-  _ADDSIGHTINGREQUEST._serialized_end=886
-  _ADDSIGHTINGRESPONSE._serialized_start=889
-  _ADDSIGHTINGRESPONSE._serialized_end=1118
+  _TRAILREQUEST._serialized_start=207
+  _TRAILREQUEST._serialized_end=269
+  _TRAILRESPONSE._serialized_start=272
+  _TRAILRESPONSE._serialized_end=503
+  _LISTENDEDDRIVESREQUEST._serialized_start=505
+  _LISTENDEDDRIVESREQUEST._serialized_end=589
+  _LISTENDEDDRIVESRESPONSE._serialized_start=591
+  _LISTENDEDDRIVESRESPONSE._serialized_end=705
+  _ENDEDDRIVE._serialized_start=708
+  _ENDEDDRIVE._serialized_end=891
+  _TRAILPOINT._serialized_start=894
+  _TRAILPOINT._serialized_end=1161
+  _RECENTMEASUREMENT._serialized_start=1164
+  _RECENTMEASUREMENT._serialized_end=1297
+  _ADDSIGHTINGREQUEST._serialized_start=1300
+  _ADDSIGHTINGREQUEST._serialized_end=1467
+  _ADDSIGHTINGRESPONSE._serialized_start=1470
+  _ADDSIGHTINGRESPONSE._serialized_end=1699
 # @@protoc_insertion_point(module_scope)

@@ -410,6 +410,118 @@ export declare type UploadMapResponse = Message<"leadline.v1.UploadMapResponse">
 export declare const UploadMapResponseSchema: GenMessage<UploadMapResponse>;
 
 /**
+ * UploadMapPartRequest brings a compiled map by calls one after another, for who
+ * cannot send a stream, such as a browser.
+ *
+ * @generated from message leadline.v1.UploadMapPartRequest
+ */
+export declare type UploadMapPartRequest = Message<"leadline.v1.UploadMapPartRequest"> & {
+  /**
+   * @generated from oneof leadline.v1.UploadMapPartRequest.message
+   */
+  message: {
+    /**
+     * First: begins an upload.
+     *
+     * @generated from field: leadline.v1.MapBeginning beginning = 1;
+     */
+    value: MapBeginning;
+    case: "beginning";
+  } | {
+    /**
+     * Then the file's bytes, in order. What has come is given up when nothing
+     * follows within the time that a stream may be silent.
+     *
+     * @generated from field: leadline.v1.MapPart part = 2;
+     */
+    value: MapPart;
+    case: "part";
+  } | {
+    /**
+     * Gives up the upload of this name.
+     *
+     * @generated from field: string give_up = 3;
+     */
+    value: string;
+    case: "giveUp";
+  } | { case: undefined; value?: undefined };
+};
+
+/**
+ * Describes the message leadline.v1.UploadMapPartRequest.
+ * Use `create(UploadMapPartRequestSchema)` to create a new message.
+ */
+export declare const UploadMapPartRequestSchema: GenMessage<UploadMapPartRequest>;
+
+/**
+ * MapPart is a part of a file.
+ *
+ * @generated from message leadline.v1.MapPart
+ */
+export declare type MapPart = Message<"leadline.v1.MapPart"> & {
+  /**
+   * The upload's name, as the answer to the beginning has it. Required.
+   *
+   * @generated from field: string upload = 1;
+   */
+  upload: string;
+
+  /**
+   * Where in the file the part begins, bytes: the end of the one before.
+   *
+   * @generated from field: uint64 offset = 2;
+   */
+  offset: bigint;
+
+  /**
+   * The bytes, at most 1 MiB. Required.
+   *
+   * @generated from field: bytes chunk = 3;
+   */
+  chunk: Uint8Array;
+};
+
+/**
+ * Describes the message leadline.v1.MapPart.
+ * Use `create(MapPartSchema)` to create a new message.
+ */
+export declare const MapPartSchema: GenMessage<MapPart>;
+
+/**
+ * UploadMapPartResponse says how far an upload is.
+ *
+ * @generated from message leadline.v1.UploadMapPartResponse
+ */
+export declare type UploadMapPartResponse = Message<"leadline.v1.UploadMapPartResponse"> & {
+  /**
+   * Its name; only this server knows it.
+   *
+   * @generated from field: string upload = 1;
+   */
+  upload: string;
+
+  /**
+   * How much of the file has come, bytes.
+   *
+   * @generated from field: uint64 received = 2;
+   */
+  received: bigint;
+
+  /**
+   * With the last part: new drives can use the map.
+   *
+   * @generated from field: leadline.v1.MapDescription map = 3;
+   */
+  map?: MapDescription | undefined;
+};
+
+/**
+ * Describes the message leadline.v1.UploadMapPartResponse.
+ * Use `create(UploadMapPartResponseSchema)` to create a new message.
+ */
+export declare const UploadMapPartResponseSchema: GenMessage<UploadMapPartResponse>;
+
+/**
  * MapKind is what a map is made of.
  *
  * @generated from enum leadline.v1.MapKind

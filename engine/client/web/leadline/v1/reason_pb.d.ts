@@ -308,6 +308,13 @@ export enum Reason {
   ERASED = 48,
 
   /**
+   * No drive of that name is kept of the vehicle. NOT_FOUND.
+   *
+   * @generated from enum value: REASON_UNKNOWN_DRIVE = 49;
+   */
+  UNKNOWN_DRIVE = 49,
+
+  /**
    * There is no room to keep measurements, on the disk or within the journal's
    * bound: send again later what was not acknowledged. RESOURCE_EXHAUSTED.
    *

@@ -40,8 +40,8 @@ export declare type ListResultsRequest = Message<"leadline.v1.ListResultsRequest
 export declare const ListResultsRequestSchema: GenMessage<ListResultsRequest>;
 
 /**
- * ListResultsResponse lists results by name. What is in the folder by then is
- * found: at most the first 10 000 are.
+ * ListResultsResponse lists results folder by folder, by name. What is there by
+ * then is found.
  *
  * @generated from message leadline.v1.ListResultsResponse
  */

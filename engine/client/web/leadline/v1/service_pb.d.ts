@@ -7,10 +7,10 @@ import type { FeedRequestSchema, FeedResponseSchema } from "./feed_pb.js";
 import type { WhereRequestSchema, WhereResponseSchema } from "./where_pb.js";
 import type { FollowRequestSchema, FollowResponseSchema } from "./follow_pb.js";
 import type { FollowTrafficRequestSchema, FollowTrafficResponseSchema, TrafficRequestSchema, TrafficResponseSchema } from "./traffic_pb.js";
-import type { AddSightingRequestSchema, AddSightingResponseSchema, TrailRequestSchema, TrailResponseSchema } from "./trail_pb.js";
+import type { AddSightingRequestSchema, AddSightingResponseSchema, ListEndedDrivesRequestSchema, ListEndedDrivesResponseSchema, TrailRequestSchema, TrailResponseSchema } from "./trail_pb.js";
 import type { SeeAlarmRequestSchema, SeeAlarmResponseSchema } from "./alarm_pb.js";
 import type { DescribeJournalRequestSchema, DescribeJournalResponseSchema, EndDriveRequestSchema, EndDriveResponseSchema, EraseVehicleRequestSchema, EraseVehicleResponseSchema, ListVehiclesRequestSchema, ListVehiclesResponseSchema } from "./fleet_pb.js";
-import type { DescribeMapRequestSchema, DescribeMapResponseSchema, DescribeSuiteRequestSchema, DescribeSuiteResponseSchema, ListMapsRequestSchema, ListMapsResponseSchema, ListSuitesRequestSchema, ListSuitesResponseSchema, UploadMapRequestSchema, UploadMapResponseSchema } from "./map_pb.js";
+import type { DescribeMapRequestSchema, DescribeMapResponseSchema, DescribeSuiteRequestSchema, DescribeSuiteResponseSchema, ListMapsRequestSchema, ListMapsResponseSchema, ListSuitesRequestSchema, ListSuitesResponseSchema, UploadMapPartRequestSchema, UploadMapPartResponseSchema, UploadMapRequestSchema, UploadMapResponseSchema } from "./map_pb.js";
 import type { DrawMapRequestSchema, DrawMapResponseSchema } from "./draw_pb.js";
 import type { ForecastRequestSchema, ForecastResponseSchema } from "./forecast_pb.js";
 import type { ListResultsRequestSchema, ListResultsResponseSchema, ReadResultRequestSchema, ReadResultResponseSchema } from "./results_pb.js";
@@ -96,6 +96,17 @@ export declare const PositionService: GenService<{
     methodKind: "unary";
     input: typeof TrailRequestSchema;
     output: typeof TrailResponseSchema;
+  },
+  /**
+   * ListEndedDrives says which drives have ended that Trail can still tell of,
+   * beside those of ListVehicles.
+   *
+   * @generated from rpc leadline.v1.PositionService.ListEndedDrives
+   */
+  listEndedDrives: {
+    methodKind: "unary";
+    input: typeof ListEndedDrivesRequestSchema;
+    output: typeof ListEndedDrivesResponseSchema;
   },
   /**
    * AddSighting enters what somebody says of a vehicle.
@@ -248,6 +259,16 @@ export declare const PositionService: GenService<{
     methodKind: "client_streaming";
     input: typeof UploadMapRequestSchema;
     output: typeof UploadMapResponseSchema;
+  },
+  /**
+   * UploadMapPart does the same by calls one after another.
+   *
+   * @generated from rpc leadline.v1.PositionService.UploadMapPart
+   */
+  uploadMapPart: {
+    methodKind: "unary";
+    input: typeof UploadMapPartRequestSchema;
+    output: typeof UploadMapPartResponseSchema;
   },
 }>;
 

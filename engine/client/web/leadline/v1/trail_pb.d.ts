@@ -4,6 +4,7 @@
 
 import type { GenFile, GenMessage } from "@bufbuild/protobuf/codegenv2";
 import type { Message } from "@bufbuild/protobuf";
+import type { AlarmRecord } from "./alarm_pb.js";
 import type { Timestamp } from "@bufbuild/protobuf/wkt";
 import type { Nuisance, Posterior, Status } from "./posterior_pb.js";
 import type { Position } from "./place_pb.js";
@@ -27,6 +28,14 @@ export declare type TrailRequest = Message<"leadline.v1.TrailRequest"> & {
    * @generated from field: string vehicle = 1;
    */
   vehicle: string;
+
+  /**
+   * The drive's name, of one that has ended: see ListEndedDrives. The vehicle's
+   * present one if left out.
+   *
+   * @generated from field: string drive = 2;
+   */
+  drive: string;
 };
 
 /**
@@ -54,6 +63,32 @@ export declare type TrailResponse = Message<"leadline.v1.TrailResponse"> & {
    * @generated from field: repeated leadline.v1.TrailPoint points = 2;
    */
   points: TrailPoint[];
+
+  /**
+   * The name of its map, and the map's fingerprint.
+   *
+   * @generated from field: string map = 3;
+   */
+  map: string;
+
+  /**
+   * @generated from field: string map_fingerprint = 4;
+   */
+  mapFingerprint: string;
+
+  /**
+   * That of its suite, m.
+   *
+   * @generated from field: double alert_limit_m = 5;
+   */
+  alertLimitM: number;
+
+  /**
+   * Alarms of the drive, of one that has ended alone: at most the first 100.
+   *
+   * @generated from field: repeated leadline.v1.AlarmRecord alarms = 6;
+   */
+  alarms: AlarmRecord[];
 };
 
 /**
@@ -61,6 +96,105 @@ export declare type TrailResponse = Message<"leadline.v1.TrailResponse"> & {
  * Use `create(TrailResponseSchema)` to create a new message.
  */
 export declare const TrailResponseSchema: GenMessage<TrailResponse>;
+
+/**
+ * ListEndedDrivesRequest asks which drives have ended and made room for others.
+ *
+ * @generated from message leadline.v1.ListEndedDrivesRequest
+ */
+export declare type ListEndedDrivesRequest = Message<"leadline.v1.ListEndedDrivesRequest"> & {
+  /**
+   * The most drives in an answer; 100 if left out, at most 1000.
+   *
+   * @generated from field: uint32 page_size = 1;
+   */
+  pageSize: number;
+
+  /**
+   * From the answer before, for those that follow.
+   *
+   * @generated from field: string page_token = 2;
+   */
+  pageToken: string;
+};
+
+/**
+ * Describes the message leadline.v1.ListEndedDrivesRequest.
+ * Use `create(ListEndedDrivesRequestSchema)` to create a new message.
+ */
+export declare const ListEndedDrivesRequestSchema: GenMessage<ListEndedDrivesRequest>;
+
+/**
+ * ListEndedDrivesResponse lists drives by vehicle, the first opened first. The
+ * latest 1000 are kept, each for as long as anything is.
+ *
+ * @generated from message leadline.v1.ListEndedDrivesResponse
+ */
+export declare type ListEndedDrivesResponse = Message<"leadline.v1.ListEndedDrivesResponse"> & {
+  /**
+   * @generated from field: repeated leadline.v1.EndedDrive drives = 1;
+   */
+  drives: EndedDrive[];
+
+  /**
+   * For the next page; empty on the last.
+   *
+   * @generated from field: string next_page_token = 2;
+   */
+  nextPageToken: string;
+};
+
+/**
+ * Describes the message leadline.v1.ListEndedDrivesResponse.
+ * Use `create(ListEndedDrivesResponseSchema)` to create a new message.
+ */
+export declare const ListEndedDrivesResponseSchema: GenMessage<ListEndedDrivesResponse>;
+
+/**
+ * EndedDrive is a drive that has ended.
+ *
+ * @generated from message leadline.v1.EndedDrive
+ */
+export declare type EndedDrive = Message<"leadline.v1.EndedDrive"> & {
+  /**
+   * @generated from field: string vehicle = 1;
+   */
+  vehicle: string;
+
+  /**
+   * The drive's name.
+   *
+   * @generated from field: string drive = 2;
+   */
+  drive: string;
+
+  /**
+   * The name of its map.
+   *
+   * @generated from field: string map = 3;
+   */
+  map: string;
+
+  /**
+   * When it was opened, by the server's clock, UTC.
+   *
+   * @generated from field: google.protobuf.Timestamp opened_at = 4;
+   */
+  openedAt?: Timestamp | undefined;
+
+  /**
+   * Time of its last posterior, UTC. Not set if there was none.
+   *
+   * @generated from field: google.protobuf.Timestamp time = 5;
+   */
+  time?: Timestamp | undefined;
+};
+
+/**
+ * Describes the message leadline.v1.EndedDrive.
+ * Use `create(EndedDriveSchema)` to create a new message.
+ */
+export declare const EndedDriveSchema: GenMessage<EndedDrive>;
 
 /**
  * TrailPoint is what a figure over time needs of a posterior.

@@ -4,6 +4,7 @@
 
 import { fileDesc, messageDesc } from "@bufbuild/protobuf/codegenv2";
 import { file_google_protobuf_timestamp } from "@bufbuild/protobuf/wkt";
+import { file_leadline_v1_alarm } from "./alarm_pb.js";
 import { file_leadline_v1_feed } from "./feed_pb.js";
 import { file_leadline_v1_measurement } from "./measurement_pb.js";
 import { file_leadline_v1_place } from "./place_pb.js";
@@ -13,7 +14,7 @@ import { file_leadline_v1_posterior } from "./posterior_pb.js";
  * Describes the file leadline/v1/trail.proto.
  */
 export const file_leadline_v1_trail = /*@__PURE__*/
-  fileDesc("ChdsZWFkbGluZS92MS90cmFpbC5wcm90bxILbGVhZGxpbmUudjEiHwoMVHJhaWxSZXF1ZXN0Eg8KB3ZlaGljbGUYASABKAkiRwoNVHJhaWxSZXNwb25zZRINCgVkcml2ZRgBIAEoCRInCgZwb2ludHMYAiADKAsyFy5sZWFkbGluZS52MS5UcmFpbFBvaW50ItQBCgpUcmFpbFBvaW50EigKBHRpbWUYASABKAsyGi5nb29nbGUucHJvdG9idWYuVGltZXN0YW1wEiMKBnN0YXR1cxgCIAEoDjITLmxlYWRsaW5lLnYxLlN0YXR1cxIjCgRtZWFuGAMgASgLMhUubGVhZGxpbmUudjEuUG9zaXRpb24SEgoKcmFkaXVzOTVfbRgEIAEoARIUCgxsb2dfZXZpZGVuY2UYBSABKAESKAoJbnVpc2FuY2VzGAYgAygLMhUubGVhZGxpbmUudjEuTnVpc2FuY2UibwoRUmVjZW50TWVhc3VyZW1lbnQSMwoLbWVhc3VyZW1lbnQYASABKAsyHi5sZWFkbGluZS52MS5TZW5zb3JNZWFzdXJlbWVudBIlCgdyZWZ1c2FsGAIgASgLMhQubGVhZGxpbmUudjEuUmVmdXNhbCKHAQoSQWRkU2lnaHRpbmdSZXF1ZXN0Eg8KB3ZlaGljbGUYASABKAkSDQoFZHJpdmUYAiABKAkSKAoEdGltZRgDIAEoCzIaLmdvb2dsZS5wcm90b2J1Zi5UaW1lc3RhbXASJwoIc2lnaHRpbmcYBCABKAsyFS5sZWFkbGluZS52MS5TaWdodGluZyLAAQoTQWRkU2lnaHRpbmdSZXNwb25zZRIzCgttZWFzdXJlbWVudBgBIAEoCzIeLmxlYWRsaW5lLnYxLlNlbnNvck1lYXN1cmVtZW50EiUKB3JlZnVzYWwYAiABKAsyFC5sZWFkbGluZS52MS5SZWZ1c2FsEiYKBmJlZm9yZRgDIAEoCzIWLmxlYWRsaW5lLnYxLlBvc3RlcmlvchIlCgVhZnRlchgEIAEoCzIWLmxlYWRsaW5lLnYxLlBvc3RlcmlvckInWiVsZWFkbGluZS9wcm90by9sZWFkbGluZS92MTtsZWFkbGluZXYxYgZwcm90bzM", [file_google_protobuf_timestamp, file_leadline_v1_feed, file_leadline_v1_measurement, file_leadline_v1_place, file_leadline_v1_posterior]);
+  fileDesc("ChdsZWFkbGluZS92MS90cmFpbC5wcm90bxILbGVhZGxpbmUudjEiLgoMVHJhaWxSZXF1ZXN0Eg8KB3ZlaGljbGUYASABKAkSDQoFZHJpdmUYAiABKAkirgEKDVRyYWlsUmVzcG9uc2USDQoFZHJpdmUYASABKAkSJwoGcG9pbnRzGAIgAygLMhcubGVhZGxpbmUudjEuVHJhaWxQb2ludBILCgNtYXAYAyABKAkSFwoPbWFwX2ZpbmdlcnByaW50GAQgASgJEhUKDWFsZXJ0X2xpbWl0X20YBSABKAESKAoGYWxhcm1zGAYgAygLMhgubGVhZGxpbmUudjEuQWxhcm1SZWNvcmQiPwoWTGlzdEVuZGVkRHJpdmVzUmVxdWVzdBIRCglwYWdlX3NpemUYASABKA0SEgoKcGFnZV90b2tlbhgCIAEoCSJbChdMaXN0RW5kZWREcml2ZXNSZXNwb25zZRInCgZkcml2ZXMYASADKAsyFy5sZWFkbGluZS52MS5FbmRlZERyaXZlEhcKD25leHRfcGFnZV90b2tlbhgCIAEoCSKSAQoKRW5kZWREcml2ZRIPCgd2ZWhpY2xlGAEgASgJEg0KBWRyaXZlGAIgASgJEgsKA21hcBgDIAEoCRItCglvcGVuZWRfYXQYBCABKAsyGi5nb29nbGUucHJvdG9idWYuVGltZXN0YW1wEigKBHRpbWUYBSABKAsyGi5nb29nbGUucHJvdG9idWYuVGltZXN0YW1wItQBCgpUcmFpbFBvaW50EigKBHRpbWUYASABKAsyGi5nb29nbGUucHJvdG9idWYuVGltZXN0YW1wEiMKBnN0YXR1cxgCIAEoDjITLmxlYWRsaW5lLnYxLlN0YXR1cxIjCgRtZWFuGAMgASgLMhUubGVhZGxpbmUudjEuUG9zaXRpb24SEgoKcmFkaXVzOTVfbRgEIAEoARIUCgxsb2dfZXZpZGVuY2UYBSABKAESKAoJbnVpc2FuY2VzGAYgAygLMhUubGVhZGxpbmUudjEuTnVpc2FuY2UibwoRUmVjZW50TWVhc3VyZW1lbnQSMwoLbWVhc3VyZW1lbnQYASABKAsyHi5sZWFkbGluZS52MS5TZW5zb3JNZWFzdXJlbWVudBIlCgdyZWZ1c2FsGAIgASgLMhQubGVhZGxpbmUudjEuUmVmdXNhbCKHAQoSQWRkU2lnaHRpbmdSZXF1ZXN0Eg8KB3ZlaGljbGUYASABKAkSDQoFZHJpdmUYAiABKAkSKAoEdGltZRgDIAEoCzIaLmdvb2dsZS5wcm90b2J1Zi5UaW1lc3RhbXASJwoIc2lnaHRpbmcYBCABKAsyFS5sZWFkbGluZS52MS5TaWdodGluZyLAAQoTQWRkU2lnaHRpbmdSZXNwb25zZRIzCgttZWFzdXJlbWVudBgBIAEoCzIeLmxlYWRsaW5lLnYxLlNlbnNvck1lYXN1cmVtZW50EiUKB3JlZnVzYWwYAiABKAsyFC5sZWFkbGluZS52MS5SZWZ1c2FsEiYKBmJlZm9yZRgDIAEoCzIWLmxlYWRsaW5lLnYxLlBvc3RlcmlvchIlCgVhZnRlchgEIAEoCzIWLmxlYWRsaW5lLnYxLlBvc3RlcmlvckInWiVsZWFkbGluZS9wcm90by9sZWFkbGluZS92MTtsZWFkbGluZXYxYgZwcm90bzM", [file_google_protobuf_timestamp, file_leadline_v1_alarm, file_leadline_v1_feed, file_leadline_v1_measurement, file_leadline_v1_place, file_leadline_v1_posterior]);
 
 /**
  * Describes the message leadline.v1.TrailRequest.
@@ -30,30 +31,51 @@ export const TrailResponseSchema = /*@__PURE__*/
   messageDesc(file_leadline_v1_trail, 1);
 
 /**
+ * Describes the message leadline.v1.ListEndedDrivesRequest.
+ * Use `create(ListEndedDrivesRequestSchema)` to create a new message.
+ */
+export const ListEndedDrivesRequestSchema = /*@__PURE__*/
+  messageDesc(file_leadline_v1_trail, 2);
+
+/**
+ * Describes the message leadline.v1.ListEndedDrivesResponse.
+ * Use `create(ListEndedDrivesResponseSchema)` to create a new message.
+ */
+export const ListEndedDrivesResponseSchema = /*@__PURE__*/
+  messageDesc(file_leadline_v1_trail, 3);
+
+/**
+ * Describes the message leadline.v1.EndedDrive.
+ * Use `create(EndedDriveSchema)` to create a new message.
+ */
+export const EndedDriveSchema = /*@__PURE__*/
+  messageDesc(file_leadline_v1_trail, 4);
+
+/**
  * Describes the message leadline.v1.TrailPoint.
  * Use `create(TrailPointSchema)` to create a new message.
  */
 export const TrailPointSchema = /*@__PURE__*/
-  messageDesc(file_leadline_v1_trail, 2);
+  messageDesc(file_leadline_v1_trail, 5);
 
 /**
  * Describes the message leadline.v1.RecentMeasurement.
  * Use `create(RecentMeasurementSchema)` to create a new message.
  */
 export const RecentMeasurementSchema = /*@__PURE__*/
-  messageDesc(file_leadline_v1_trail, 3);
+  messageDesc(file_leadline_v1_trail, 6);
 
 /**
  * Describes the message leadline.v1.AddSightingRequest.
  * Use `create(AddSightingRequestSchema)` to create a new message.
  */
 export const AddSightingRequestSchema = /*@__PURE__*/
-  messageDesc(file_leadline_v1_trail, 4);
+  messageDesc(file_leadline_v1_trail, 7);
 
 /**
  * Describes the message leadline.v1.AddSightingResponse.
  * Use `create(AddSightingResponseSchema)` to create a new message.
  */
 export const AddSightingResponseSchema = /*@__PURE__*/
-  messageDesc(file_leadline_v1_trail, 5);
+  messageDesc(file_leadline_v1_trail, 8);
 
