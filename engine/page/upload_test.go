@@ -91,7 +91,7 @@ func TestUploading(t *testing.T) {
 	p.show(token("Ada", time.Hour, "dispatcher"))
 	const upload = "[...document.querySelectorAll('#upload button')].find(e => e.innerText === 'Upload')"
 	p.says(".connection", "Live.")
-	p.await("nothing else to come", "!document.querySelector('.identity') && document.querySelectorAll('.cards article').length === 3")
+	p.await("nothing else to come", "!document.querySelector('.identity') && document.querySelectorAll('.cards article').length === 3 && document.querySelectorAll('main details').length === 3 && document.querySelector('main').innerText.includes('The server has no drive.')")
 	p.click(upload)
 	p.says("#upload-trouble", "There is no file yet")
 	p.choose("#upload [name=map]", put("<b>town.geojson", data))
