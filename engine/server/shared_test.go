@@ -23,8 +23,8 @@ import (
 // openSea is the map of a file that says nothing.
 func openSea(string) (Map, error) { return sea(), nil }
 
-// among is a server that shares a journal.
-func among(t *testing.T, o *journal.Options) *life {
+// among is a server that shares a journal, with what else is to be said of it.
+func among(t *testing.T, o *journal.Options, more ...func(*Config)) *life {
 	t.Helper()
 	ln, err := net.Listen("tcp", "127.0.0.1:0")
 	if err != nil {
@@ -35,6 +35,9 @@ func among(t *testing.T, o *journal.Options) *life {
 	l.cfg = Config{
 		Maps: []Map{sea()}, Journal: &mine, Build: "this", MaxCells: 1000,
 		Share: &Share{Address: l.addr, Dial: func(a string) (*grpc.ClientConn, error) { return client.Dial(a) }, OpenMap: openSea, Lease: 2 * time.Second},
+	}
+	for _, change := range more {
+		change(&l.cfg)
 	}
 	if l.s, err = New(l.cfg); err != nil {
 		t.Fatal(err)
