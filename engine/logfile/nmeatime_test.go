@@ -41,6 +41,7 @@ func TestTimesOfSentences(t *testing.T) {
 		{"the time before", "", []string{zda("120000", "01"), hdt, zda("120001", "01"), hdt}, "01T12:00:00 01T12:00:01", nil},
 		{"spread evenly", "", []string{zda("120000", "01"), hdt, hdt, dpt, hdt, hdt, zda("120002", "01"), hdt}, "01T12:00:00 01T12:00:00 01T12:00:00.5 01T12:00:01 01T12:00:01.5 01T12:00:02", nil},
 		{"the last one is as long as the one before", "", []string{zda("120000", "01"), zda("120004", "01"), hdt, hdt}, "01T12:00:04 01T12:00:06", nil},
+		{"a clock that jumps ahead", "", []string{zda("120000", "01"), hdt, hdt, zda("120002", "01"), hdt, hdt, zda("120000", "09"), hdt, hdt}, "01T12:00:00 01T12:00:01 01T12:00:02 01T12:00:03 09T12:00:00 09T12:00:01", nil},
 		{"a second if it is alone", "", []string{zda("120000", "01"), hdt, hdt}, "01T12:00:00 01T12:00:00.5", nil},
 		{"before the first time", "", []string{hdt, zda("120000", "01"), hdt}, "01T12:00:00", map[string]int{"before the first time": 1}},
 		{"before the first date", "", []string{gga("115959"), hdt, rmc("120000", "A", "010530"), hdt}, "01T12:00:00 01T12:00:00", map[string]int{"before the first date": 1, "before the first time": 1, "RMC: another sentence gives fix": 0}},

@@ -95,6 +95,11 @@ type epochs struct {
 // maxPending bounds the readings of one epoch: an hour at 50 Hz.
 const maxPending = 180_000
 
+// mostEpoch is the longest time over which readings without a time of their own are
+// spread: beyond, the log paused or a clock jumped, and the epoch is taken to be as long
+// as the one before it.
+const mostEpoch = sensor.Time(3600e9)
+
 // add keeps a reading; false if there are too many.
 func (e *epochs) add(r reading) bool {
 	if len(e.pending) >= maxPending {
@@ -112,8 +117,13 @@ func (e *epochs) begin(at sensor.Time) []reading {
 		e.begun, e.from = true, at
 		return nil
 	}
-	e.length = at - e.from
-	out := e.close(at)
+	var out []reading
+	if at-e.from > mostEpoch {
+		out = e.end()
+	} else {
+		e.length = at - e.from
+		out = e.close(at)
+	}
 	e.from = at
 	return out
 }
