@@ -125,13 +125,13 @@ function Page() {
         )}
         {v === "past" && (
           <>
-            <MapView key="past" />
             <section class="side" tabIndex={0} aria-label="Past runs">
               <h2>
                 Past runs <small>what they said, and when</small>
               </h2>
               <PastRuns />
             </section>
+            <MapView key="past" />
           </>
         )}
         {v === "alarms" && <Alarms />}
