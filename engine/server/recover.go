@@ -280,7 +280,7 @@ func (s *Server) revive(h *history) (o *owner, err error) {
 	beside := &searches{slots: s.searching, waiting: &s.searchesWaiting}
 	cfg := session.Config{
 		Vehicle: h.vehicle(), Space: m.Space, Names: m.Names, Suite: suite,
-		Start: start(wh.Start), MaxCells: h.opened.MaxCells, Begin: beside.begin, Desks: &s.desks,
+		Start: start(wh.Start), PosteriorS: wh.PosteriorS, MaxCells: h.opened.MaxCells, Begin: beside.begin, Desks: &s.desks,
 	}
 	o, err = s.replay(h, m, cfg, beside)
 	if err != nil {

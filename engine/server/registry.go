@@ -82,7 +82,7 @@ func (s *Server) open(ctx context.Context, req *leadlinev1.Open) (*owner, error)
 	beside := &searches{slots: s.searching, waiting: &s.searchesWaiting}
 	sess, err := s.newSession(h.Traffic, session.Config{
 		Vehicle: h.Vehicle, Space: m.Space, Names: m.Names, Suite: suite,
-		Start: start(h.Start), MaxCells: s.cfg.MaxCells, Begin: beside.begin, Desks: &s.desks,
+		Start: start(h.Start), PosteriorS: h.PosteriorS, MaxCells: s.cfg.MaxCells, Begin: beside.begin, Desks: &s.desks,
 	})
 	<-s.openings
 	if err != nil {

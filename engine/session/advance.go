@@ -113,14 +113,14 @@ func (s *Session) stride() float64 {
 	return math.Min(maxStrideS, math.Max(strideShare*s.cellM(), s.strideM)/math.Max(v, 1))
 }
 
-// silent reports whether the posterior at t is passed over. A lattice is
-// cheaper to read than roads, and is fine where it is located: it is never
-// wide.
+// silent reports whether the posterior at t is passed over for its width. A
+// lattice is cheaper to read than roads, and is fine where it is located: it is
+// never wide.
 func (s *Session) silent(t sensor.Time) bool {
 	if s.lines == nil {
 		return false
 	}
-	since := t.Seconds(s.state.posteriorAt)
+	since := t.Seconds(s.state.posedAt)
 	switch n := s.state.belief.Cells(); {
 	case n > s.hugeSize:
 		return since < hugePosteriorS
@@ -145,7 +145,8 @@ func (s *Session) begin() {
 	s.snaps[0].time = t - 1 // an earlier one may have come
 	s.state.begun = true
 	s.state.time = t
-	s.state.posteriorAt = t - sensor.Time((hugePosteriorS+1)*1e9) // the first is due
+	s.state.posteriorAt = t - sensor.Time((max(hugePosteriorS, s.posteriorS)+1)*1e9) // the first is due
+	s.state.posedAt = s.state.posteriorAt
 	if !s.begunOnce {
 		s.begunOnce, s.reached = true, t-1
 	}
@@ -183,7 +184,11 @@ func (s *Session) step(t sensor.Time, end int) *summary.Posterior {
 		return nil
 	}
 	st.unread, s.fresh = true, false
-	if s.silent(t) {
+	switch {
+	case s.silent(t):
+		return nil
+	case t.Seconds(st.posteriorAt) < s.posteriorS:
+		s.pose()
 		return nil
 	}
 	return s.summarise()

@@ -20,19 +20,42 @@ func (s *Session) summarise() *summary.Posterior {
 	}
 	p.GapS = st.gapS
 	p.LostAlarm = st.aside.raise(p)
-	st.pose = sensor.Pose{At: p.MeanFrame, HeadingVar: sensor.NoHeading}
-	if p.Heading.Known {
-		g, _ := s.space.Frame().Convergence(p.MeanFrame)
-		st.pose.HeadingRad = geo.WrapPi(p.Heading.TrueRad - g)
-		st.pose.HeadingVar = p.Heading.SigmaRad * p.Heading.SigmaRad
-	}
+	s.stand(p.MeanFrame, p.Heading)
 	st.evidence, st.gapS, st.posteriorAt, st.unread = nil, 0, st.time, false
 	s.fresh = true
 	return p
 }
 
+// pose takes the pose that summarise would, at a fraction of its cost.
+func (s *Session) pose() {
+	in := s.input()
+	mean, heading, err := s.desk().sum.Pose(&in)
+	if err != nil {
+		panic(fmt.Sprintf("session: %v", err)) // a belief is never empty
+	}
+	s.stand(mean, heading)
+}
+
+// stand keeps where the vehicle is and which way it faces, for what is turned into
+// the frame from there.
+func (s *Session) stand(at geo.Point, heading summary.Direction) {
+	st := &s.state
+	st.pose, st.posedAt = sensor.Pose{At: at, HeadingVar: sensor.NoHeading}, st.time
+	if heading.Known {
+		g, _ := s.space.Frame().Convergence(at)
+		st.pose.HeadingRad = geo.WrapPi(heading.TrueRad - g)
+		st.pose.HeadingVar = heading.SigmaRad * heading.SigmaRad
+	}
+}
+
 // read summarizes the present belief into dst and changes nothing else.
 func (s *Session) read(sum *summary.Summarizer, dst *summary.Posterior) error {
+	in := s.input()
+	return sum.Summarize(dst, &in)
+}
+
+// input is what the present posterior is made of.
+func (s *Session) input() summary.Input {
 	st := &s.state
 	b := st.belief
 	d := s.desk()
@@ -56,7 +79,7 @@ func (s *Session) read(sum *summary.Summarizer, dst *summary.Posterior) error {
 	if s.names != nil {
 		in.Names = s.names
 	}
-	return sum.Summarize(dst, &in)
+	return in
 }
 
 // groundRun is how many places beyond looks up at once: as many as stay in the

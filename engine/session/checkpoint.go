@@ -233,6 +233,7 @@ func (st *state) code(c *exact.Coder, searches []*search) {
 	c.Float(&st.gapS)
 	c.Value(&st.posteriorAt)
 	c.Bool(&st.unread)
+	c.Value(&st.posedAt)
 	exact.Slice(c, &st.previous, 12, func(l *lastEvent) {
 		l.code(c)
 		c.Value(&l.time)

@@ -137,12 +137,12 @@ func (s *Session) runUntil(t sensor.Time) {
 // posteriors keep otherwise.
 func (s *Session) turnHere() {
 	st := &s.state
-	if st.time.Seconds(st.posteriorAt) < turnEveryS {
+	if st.time.Seconds(st.posedAt) < turnEveryS {
 		return
 	}
 	_, at, _ := st.belief.Moments(s.space, &s.desk().work)
 	st.pose = sensor.Pose{At: at, HeadingVar: sensor.NoHeading}
-	st.evidence, st.posteriorAt = nil, st.time
+	st.evidence, st.posedAt = nil, st.time
 }
 
 // turnEveryS: the frame's north turns by less than 0.01° over a kilometre.

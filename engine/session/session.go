@@ -27,6 +27,9 @@ type Config struct {
 	// It decides the resolution of a wide start, and so belongs to what a
 	// posterior depends on.
 	MaxCells int
+	// PosteriorS has posteriors come at most so often, in seconds of the events'
+	// time; 0 is one for each time. The belief is the same.
+	PosteriorS float64
 	// Begin, if set, begins a piece of work elsewhere, which touches nothing that
 	// anybody else has, and returns what waits for its end; nil has it done when
 	// its end is waited for. See search.go.
@@ -39,6 +42,9 @@ type Config struct {
 	// would be left out of the sum, and the worst suite have the least to answer for.
 	Unguarded bool
 }
+
+// MaxPosteriorS bounds Config.PosteriorS.
+const MaxPosteriorS = 3600
 
 // Names is what a road map knows about its directed edges.
 type Names interface {
@@ -139,6 +145,7 @@ type Session struct {
 	maxCells int
 	// hold is the suite's hold_s, still for how long a standstill speaks.
 	hold, still                    sensor.Time
+	posteriorS                     float64
 	wideSize, hugeSize, maxWaiting int // the constants, less in tests
 	maxCarried, strideM            float64
 	followed                       float64 // work of the present move
@@ -216,8 +223,12 @@ func prepare(c Config) (*Session, error) {
 	if c.MaxCells < 0 {
 		return nil, fmt.Errorf("session: MaxCells is %d: it must be positive, or 0 for %d", c.MaxCells, defaultMaxCells)
 	}
+	if !(c.PosteriorS >= 0 && c.PosteriorS <= MaxPosteriorS) {
+		return nil, fmt.Errorf("session: PosteriorS is %v: it must be from 0 to %d seconds", c.PosteriorS, MaxPosteriorS)
+	}
 	s := &Session{
-		vehicle: c.Vehicle, space: c.Space, names: c.Names, dim: 2, maxCells: c.MaxCells, hasher: summary.NewHasher(),
+		posteriorS: c.PosteriorS,
+		vehicle:    c.Vehicle, space: c.Space, names: c.Names, dim: 2, maxCells: c.MaxCells, hasher: summary.NewHasher(),
 		beginWork: c.Begin, desks: c.Desks, unguarded: c.Unguarded, wideSize: wideSize, hugeSize: hugeSize, strideM: strideM, maxWaiting: maxWaiting,
 	}
 	if s.maxCells == 0 {

@@ -31,6 +31,9 @@ type state struct {
 	gapS        float64
 	posteriorAt sensor.Time
 	unread      bool
+	// posedAt is when the pose was taken: with a posterior, or where one was passed
+	// over because nobody wanted it (Config.PosteriorS).
+	posedAt sensor.Time
 	// previous holds the last processed event of each voice, in order.
 	previous  []lastEvent
 	processed uint64 // events

@@ -25,18 +25,23 @@ func (s *Summarizer) quantities(dst *Posterior, in *Input) {
 	dst.Heading = Direction{}
 	dst.Nuisances = dst.Nuisances[:0]
 	for q := b.Dim; q < k; q++ {
-		mean, sigma := s.moments(in, q, k, b.Quantities[q].Angular)
-		if b.Quantities[q].Name == filter.Heading {
-			dst.Heading = Direction{true, geo.WrapCompass(mean + s.turned.g), sigma}
-			continue
-		}
 		switch b.Quantities[q].Name {
+		case filter.Heading:
+			dst.Heading = s.heading(in, q)
+			continue
 		case filter.Speed, filter.VelocityEast, filter.VelocityNorth:
 			continue // Posterior.Speed
 		}
+		mean, sigma := s.moments(in, q, k, b.Quantities[q].Angular)
 		dst.Nuisances = append(dst.Nuisances, Nuisance{b.Quantities[q].Name, mean, sigma})
 	}
 	dst.EntropyNats = s.entropy(in)
+}
+
+// heading is the vehicle's, which is quantity q.
+func (s *Summarizer) heading(in *Input, q int) Direction {
+	mean, sigma := s.moments(in, q, in.Belief.K(), true)
+	return Direction{true, geo.WrapCompass(mean + s.turned.g), sigma}
 }
 
 func (s *Summarizer) moments(in *Input, q, k int, angular bool) (mean, sigma float64) {

@@ -126,6 +126,24 @@ func (s *Summarizer) Summarize(dst *Posterior, in *Input) error {
 	return nil
 }
 
+// Pose returns the mean and the heading that Summarize would fill in, and nothing
+// else of it.
+func (s *Summarizer) Pose(in *Input) (mean geo.Point, heading Direction, err error) {
+	if err := in.check(); err != nil {
+		return mean, heading, err
+	}
+	if mean, err = s.load(in); err != nil {
+		return mean, heading, err
+	}
+	s.turn(mean)
+	for q := in.Belief.Dim; q < in.Belief.K(); q++ {
+		if in.Belief.Quantities[q].Name == filter.Heading {
+			heading = s.heading(in, q)
+		}
+	}
+	return mean, heading, nil
+}
+
 // load copies the entries, with masses that sum to 1, and takes the moments.
 func (s *Summarizer) load(in *Input) (mean geo.Point, err error) {
 	c := in.Cloud

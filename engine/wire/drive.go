@@ -19,7 +19,12 @@ type Header struct {
 	Start               Start
 	// Traffic says that it is a road's, by that name: it has no map and no start.
 	Traffic bool
+	// PosteriorS is the least time between posteriors, in seconds.
+	PosteriorS float64
 }
+
+// maxPosteriorS is session.MaxPosteriorS.
+const maxPosteriorS = 3600
 
 // Start is what is known of the position at the beginning: near Point with
 // standard deviation SigmaM along each axis if SigmaM is positive, otherwise
@@ -32,7 +37,7 @@ type Start struct {
 
 // ToHeader converts a header. The vehicle is required.
 func ToHeader(m *leadlinev1.DriveHeader) (Header, error) {
-	h := Header{Vehicle: m.GetVehicle(), Map: m.GetMap(), Suite: m.GetSuite(), Traffic: m.GetTraffic()}
+	h := Header{Vehicle: m.GetVehicle(), Map: m.GetMap(), Suite: m.GetSuite(), Traffic: m.GetTraffic(), PosteriorS: m.GetPosteriorIntervalS()}
 	if h.Vehicle == "" {
 		return h, errors.New("vehicle is missing: give the vehicle a name")
 	}
@@ -47,12 +52,18 @@ func ToHeader(m *leadlinev1.DriveHeader) (Header, error) {
 	if h.Traffic && (h.Map != "" || h.Start.SigmaM > 0 || len(h.Start.Area) > 0) {
 		return h, errors.New("traffic has no map and no start: its suite describes the road; leave them out")
 	}
+	if !(h.PosteriorS >= 0 && h.PosteriorS <= maxPosteriorS) {
+		return h, fmt.Errorf("posterior_interval_s is %v: it must be from 0 to %d seconds", h.PosteriorS, maxPosteriorS)
+	}
+	if h.Traffic && h.PosteriorS > 0 {
+		return h, errors.New("traffic has no posteriors: leave posterior_interval_s out")
+	}
 	return h, nil
 }
 
 // FromHeader is the inverse of ToHeader.
 func FromHeader(h Header) *leadlinev1.DriveHeader {
-	return &leadlinev1.DriveHeader{Vehicle: h.Vehicle, Map: h.Map, Suite: h.Suite, Start: FromStart(h.Start), Traffic: h.Traffic}
+	return &leadlinev1.DriveHeader{Vehicle: h.Vehicle, Map: h.Map, Suite: h.Suite, Start: FromStart(h.Start), Traffic: h.Traffic, PosteriorIntervalS: h.PosteriorS}
 }
 
 // ToStart converts a start; nil and an empty one mean anywhere.

@@ -139,6 +139,12 @@ func Ordered(events []sensor.Event) []sensor.Event {
 	return sorted
 }
 
+// configured is a configuration with what a drive's header says.
+func configured(h drivefile.Header, c session.Config) session.Config {
+	c.Vehicle, c.Start, c.PosteriorS = h.Vehicle, Start(h.Start), h.PosteriorS
+	return c
+}
+
 // Start turns a drive's start into a session's.
 func Start(s drivefile.Start) session.Start {
 	switch {

@@ -26,7 +26,7 @@ type running struct {
 
 // start makes the session of a drive.
 func start(h drivefile.Header, c session.Config, watch func(session.Change), beforeFix func(sensor.Event, *summary.Posterior)) (*running, error) {
-	c.Vehicle, c.Start = h.Vehicle, Start(h.Start)
+	c = configured(h, c)
 	began := time.Now()
 	s, err := session.New(c)
 	if err != nil {

@@ -168,9 +168,13 @@ type DriveHeader struct {
 	// It is no vehicle's drive but what posts hear of vehicles without a name, on
 	// the road that the suite describes: see TrafficPicture. vehicle is then the
 	// road's name; map and start are left out.
-	Traffic       bool `protobuf:"varint,5,opt,name=traffic,proto3" json:"traffic,omitempty"`
-	unknownFields protoimpl.UnknownFields
-	sizeCache     protoimpl.SizeCache
+	Traffic bool `protobuf:"varint,5,opt,name=traffic,proto3" json:"traffic,omitempty"`
+	// Posteriors come at most so often, in seconds of the measurements' time; one
+	// for each time if left out. What is known of the vehicle is the same, and takes
+	// about half the work.
+	PosteriorIntervalS float64 `protobuf:"fixed64,6,opt,name=posterior_interval_s,json=posteriorIntervalS,proto3" json:"posterior_interval_s,omitempty"`
+	unknownFields      protoimpl.UnknownFields
+	sizeCache          protoimpl.SizeCache
 }
 
 func (x *DriveHeader) Reset() {
@@ -236,6 +240,13 @@ func (x *DriveHeader) GetTraffic() bool {
 		return x.Traffic
 	}
 	return false
+}
+
+func (x *DriveHeader) GetPosteriorIntervalS() float64 {
+	if x != nil {
+		return x.PosteriorIntervalS
+	}
+	return 0
 }
 
 // Start is what is known of the position at the beginning.
@@ -501,13 +512,14 @@ const file_leadline_v1_drive_proto_rawDesc = "" +
 	"\vmeasurement\x18\x05 \x01(\v2\x18.leadline.v1.MeasurementH\x00R\vmeasurement\x12*\n" +
 	"\x05truth\x18\x06 \x01(\v2\x12.leadline.v1.TruthH\x00R\x05truthB\b\n" +
 	"\x06recordB\t\n" +
-	"\a_number\"\x93\x01\n" +
+	"\a_number\"\xc5\x01\n" +
 	"\vDriveHeader\x12\x18\n" +
 	"\avehicle\x18\x01 \x01(\tR\avehicle\x12\x10\n" +
 	"\x03map\x18\x02 \x01(\tR\x03map\x12\x14\n" +
 	"\x05suite\x18\x03 \x01(\tR\x05suite\x12(\n" +
 	"\x05start\x18\x04 \x01(\v2\x12.leadline.v1.StartR\x05start\x12\x18\n" +
-	"\atraffic\x18\x05 \x01(\bR\atraffic\"\xa3\x01\n" +
+	"\atraffic\x18\x05 \x01(\bR\atraffic\x120\n" +
+	"\x14posterior_interval_s\x18\x06 \x01(\x01R\x12posteriorIntervalS\"\xa3\x01\n" +
 	"\x05Start\x12/\n" +
 	"\x05point\x18\x01 \x01(\v2\x17.leadline.v1.StartPointH\x00R\x05point\x12*\n" +
 	"\x04area\x18\x02 \x01(\v2\x14.leadline.v1.PolygonH\x00R\x04area\x124\n" +

@@ -9,18 +9,20 @@ from typing import ClassVar as _ClassVar, Mapping as _Mapping, Optional as _Opti
 DESCRIPTOR: _descriptor.FileDescriptor
 
 class DriveHeader(_message.Message):
-    __slots__ = ["map", "start", "suite", "traffic", "vehicle"]
+    __slots__ = ["map", "posterior_interval_s", "start", "suite", "traffic", "vehicle"]
     MAP_FIELD_NUMBER: _ClassVar[int]
+    POSTERIOR_INTERVAL_S_FIELD_NUMBER: _ClassVar[int]
     START_FIELD_NUMBER: _ClassVar[int]
     SUITE_FIELD_NUMBER: _ClassVar[int]
     TRAFFIC_FIELD_NUMBER: _ClassVar[int]
     VEHICLE_FIELD_NUMBER: _ClassVar[int]
     map: str
+    posterior_interval_s: float
     start: Start
     suite: str
     traffic: bool
     vehicle: str
-    def __init__(self, vehicle: _Optional[str] = ..., map: _Optional[str] = ..., suite: _Optional[str] = ..., start: _Optional[_Union[Start, _Mapping]] = ..., traffic: bool = ...) -> None: ...
+    def __init__(self, vehicle: _Optional[str] = ..., map: _Optional[str] = ..., suite: _Optional[str] = ..., start: _Optional[_Union[Start, _Mapping]] = ..., traffic: bool = ..., posterior_interval_s: _Optional[float] = ...) -> None: ...
 
 class DriveRecord(_message.Message):
     __slots__ = ["header", "measurement", "number", "sensor", "time", "truth"]

@@ -117,6 +117,15 @@ export declare type DriveHeader = Message<"leadline.v1.DriveHeader"> & {
    * @generated from field: bool traffic = 5;
    */
   traffic: boolean;
+
+  /**
+   * Posteriors come at most so often, in seconds of the measurements' time; one
+   * for each time if left out. What is known of the vehicle is the same, and takes
+   * about half the work.
+   *
+   * @generated from field: double posterior_interval_s = 6;
+   */
+  posteriorIntervalS: number;
 };
 
 /**
