@@ -133,8 +133,8 @@ func TestFieldsOfCheckpoints(t *testing.T) {
 		v      any
 		fields int
 	}{
-		{Session{}, 50},
-		{state{}, 20},
+		{Session{}, 51},
+		{state{}, 21},
 		{aside{}, 10},
 		{snapshot{}, 3},
 		{log{}, 7},
