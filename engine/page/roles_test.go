@@ -106,6 +106,7 @@ func TestEnding(t *testing.T) {
 		t.Errorf("ended though left: %q", got)
 	}
 	p.press("Enter")
+	p.await("the harmless answer has the focus again", "document.activeElement === "+answer("Leave it"))
 	p.tabTo(answer("End it"))
 	p.press("Enter")
 	p.says("#end-answer", fmt.Sprintf("The drive drive of van has ended: %d measurements taken, 0 refused,", len(upTo(w.van, 5))))

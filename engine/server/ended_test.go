@@ -20,7 +20,7 @@ import (
 // before, after restarts, too, whether the server was stopped in order or not; what is erased or
 // too old is not kept; and of a drive that goes on its past survives a restart, thinned.
 func TestEndedDrives(t *testing.T) {
-	l := &life{t: t, cfg: Config{Journal: keptIn(t.TempDir()), Build: "this", MaxCells: 1000}}
+	l := &life{t: t, cfg: Config{Journal: keptIn(t.TempDir()), Build: "this", MaxCells: 1000, KeepFor: time.Hour}}
 	var calls leadlinev1.PositionServiceClient
 	start := func() {
 		t.Helper()
@@ -142,7 +142,6 @@ func TestEndedDrives(t *testing.T) {
 		l.stop(limited(t))
 		start()
 	}
-	l.s.cfg.KeepFor = time.Hour
 	l.s.age(time.Now().Add(59 * time.Minute))
 	if got := listed(); got != "u only" {
 		t.Errorf("before its time: %s", got)
