@@ -81,7 +81,7 @@ func TestRedraw(t *testing.T) {
 	p := b.open(t, r.origin+"/", 1000, 800, false)
 	p.says(".list", "No vehicle is here yet")
 	p.do("Performance.enable", map[string]any{"timeDomain": "threadTicks"}, nil)
-	const rounds = 15
+	const rounds = 7
 	figures := map[string]map[string]float64{}
 	for _, c := range []struct {
 		name   string

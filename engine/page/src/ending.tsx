@@ -65,7 +65,7 @@ export function EndQuestion() {
     else box.current?.close();
   }, [d]);
   return (
-    <dialog ref={box} aria-labelledby="end-question" onClose={() => (asked.value = undefined)}>
+    <dialog ref={box} aria-labelledby="end-question" onCancel={() => (asked.value = undefined)}>
       {d && (
         <>
           <h2 id="end-question">End the {named(d)}?</h2>
