@@ -5,7 +5,7 @@
 GO       ?= go
 BUF       = $(GO) tool -modfile=tools/buf.mod buf
 GOFUMPT   = $(GO) tool -modfile=tools/gofumpt.mod gofumpt
-VECTORS   = $(GO) run -modfile=tools/avo.mod tools/vectors/main.go -pkg kernel
+VECTORS   = $(GO) run -modfile=tools/avo.mod $(wildcard tools/vectors/*.go) -pkg kernel
 LINTER    = $(GO) tool -modfile=tools/lint.mod golangci-lint
 PROTOS    = $(wildcard proto/leadline/v1/*.proto)
 VERSION  ?= $(shell git describe --tags --always --dirty 2>/dev/null || echo unknown)
