@@ -7,7 +7,6 @@ import (
 	"path/filepath"
 	"strings"
 	"testing"
-	"time"
 
 	"leadline/engine/study/replay"
 )
@@ -79,12 +78,12 @@ func TestDemo(t *testing.T) {
 			log := &lockedBuffer{}
 			serveCmd.Stdout = log
 			inBackground(t, serveCmd)
-			until(t, func() bool { return strings.Contains(log.String(), "listening on "+address) })
+			eventually(t, "the server listens", func() bool { return strings.Contains(log.String(), "listening on "+address) })
 		case strings.Contains(line, " feed "):
 			feedCmd = shell(line)
 			inBackground(t, feedCmd)
 		case strings.Contains(line, " where "): // while it is fed
-			until(t, func() bool {
+			eventually(t, "the vehicle is somewhere", func() bool {
 				out, err := shell(line).Output()
 				return err == nil && bytes.Contains(out, []byte(got.Scenes[0].Drive+" is "))
 			})
@@ -109,16 +108,6 @@ func inBackground(t *testing.T, c *exec.Cmd) {
 		_ = c.Process.Kill()
 		_ = c.Wait()
 	})
-}
-
-// until waits for something that other processes do.
-func until(t *testing.T, f func() bool) {
-	t.Helper()
-	for deadline := time.Now().Add(patience); !f(); time.Sleep(20 * time.Millisecond) {
-		if time.Now().After(deadline) {
-			t.Fatal("it does not come about")
-		}
-	}
 }
 
 // TestDemoOverRoads drives over roads of one's own. One turn is too little to

@@ -81,7 +81,7 @@ func TestSecondSignal(t *testing.T) {
 	if err := srv.cmd.Process.Signal(syscall.SIGINT); err != nil {
 		t.Fatal(err)
 	}
-	until(t, func() bool { return strings.Contains(srv.log.String(), "msg=stopping") })
+	eventually(t, "the server stops", func() bool { return strings.Contains(srv.log.String(), "msg=stopping") })
 	if status := srv.stop(t); status != exitFailure || !strings.Contains(srv.log.String(), "stopped at once") ||
 		!strings.Contains(srv.log.String(), "leadline: a second signal") {
 		t.Errorf("status %d\n%s", status, srv.log)

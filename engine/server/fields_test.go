@@ -20,6 +20,7 @@ import (
 	"leadline/engine/client"
 	"leadline/engine/sensor"
 	"leadline/engine/wire"
+	"leadline/fixtures/scenes"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
@@ -326,7 +327,7 @@ func TestFields(t *testing.T) {
 	const name, cells = "x", 1000 // x is every name in the requests; few cells cost little
 	lon, lat := 5.1, 53.1
 	suite := &sensor.Suite{Beacons: []sensor.Place{{ID: name, LonDeg: &lon, LatDeg: &lat}}, Posts: []sensor.Post{{ID: name, LonDeg: &lon, LatDeg: &lat}}}
-	listens, err := sensor.ParseSuite("road", []byte(roadSuite))
+	listens, err := sensor.ParseSuite("road", []byte(scenes.TwoPosts))
 	if err != nil {
 		t.Fatal(err)
 	}

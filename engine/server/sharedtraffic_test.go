@@ -17,6 +17,7 @@ import (
 	"leadline/engine/traffic"
 	"leadline/engine/wire"
 	"leadline/fixtures/credentials"
+	"leadline/fixtures/scenes"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
@@ -28,7 +29,7 @@ func TestShareTraffic(t *testing.T) {
 	if testing.Short() {
 		t.Skip("several servers: not with -short")
 	}
-	suite, err := sensor.ParseSuite("road", []byte(roadSuite))
+	suite, err := sensor.ParseSuite("road", []byte(scenes.TwoPosts))
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -75,7 +76,7 @@ func TestShareTraffic(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	evs := roadEvents()
+	evs := scenes.PastTwoPosts(began)
 	for i, ev := range evs {
 		if evs[i], err = wire.ToEvent(wire.FromEvent(ev)); err != nil {
 			t.Fatal(err)

@@ -8,42 +8,18 @@ import (
 	"google.golang.org/protobuf/proto"
 
 	"leadline/engine/client"
-	"leadline/engine/geo"
 	"leadline/engine/sensor"
 	"leadline/engine/traffic"
 	"leadline/engine/wire"
+	"leadline/fixtures/scenes"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
-
-const roadSuite = `
-posts:
-  - {id: p1, lon: -30, lat: 45.0004, sigma_deg: 3}
-  - {id: p2, lon: -29.998, lat: 45.0004, sigma_deg: 3}
-traffic:
-  road: [{lon: -30.003, lat: 45}, {lon: -29.995, lat: 45}]
-  lines: [{name: middle, at_m: 300}]
-`
-
-// roadEvents are of a vehicle at 14 m/s past two posts.
-func roadEvents() (out []sensor.Event) {
-	for i := range 120 {
-		x := 100 + 14*0.2*float64(i)
-		for k, foot := range []float64{236, 394} {
-			bearing := geo.Heading(geo.Point{E: x - foot, N: -44.5})
-			out = append(out, sensor.Event{
-				Time: began + sensor.Time(i)*200e6, Sensor: "posts", Number: uint64(2*i + k),
-				Measurement: sensor.AcousticBearing{Post: []string{"p1", "p2"}[k], BearingRad: geo.WrapCompass(bearing), SigmaRad: geo.Rad(3)},
-			})
-		}
-	}
-	return out
-}
 
 // TestTraffic: a road is fed like a vehicle and asked for as a road; what comes of
 // it is what comes of a file, whatever is asked meanwhile; an unknown post is
 // refused, said, and the rest goes on; vehicles' calls know no roads.
 func TestTraffic(t *testing.T) {
-	suite, err := sensor.ParseSuite("road", []byte(roadSuite))
+	suite, err := sensor.ParseSuite("road", []byte(scenes.TwoPosts))
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -59,7 +35,7 @@ func TestTraffic(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	for i, ev := range roadEvents() {
+	for i, ev := range scenes.PastTwoPosts(began) {
 		if i == 50 {
 			b := ev.Measurement.(sensor.AcousticBearing)
 			b.Post = "p9"

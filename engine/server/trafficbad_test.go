@@ -11,13 +11,14 @@ import (
 	"leadline/engine/geo"
 	"leadline/engine/sensor"
 	"leadline/engine/wire"
+	"leadline/fixtures/scenes"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
 // narrowSuite has a post in line with the road, and follows one vehicle at most.
 var narrowSuite = strings.NewReplacer(
 	"traffic:\n", "  - {id: p3, lon: -29.9985, lat: 45, sigma_deg: 3}\ntraffic:\n  max_vehicles: 1\n",
-).Replace(roadSuite)
+).Replace(scenes.TwoPosts)
 
 // narrowEvents are of two vehicles that meet, each heard by two posts, and one of
 // them by a post in line with the road; and what cannot be used.

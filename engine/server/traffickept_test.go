@@ -1,17 +1,16 @@
 package server
 
 import (
-	"encoding/binary"
-	"hash/crc32"
-	"slices"
 	"strings"
 	"testing"
 
 	"leadline/engine/client"
+	"leadline/engine/exact"
 	"leadline/engine/sensor"
 	"leadline/engine/session"
 	"leadline/engine/traffic"
 	"leadline/engine/wire"
+	"leadline/fixtures/scenes"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
@@ -20,7 +19,7 @@ import (
 // again, to the same bits, and the picture says so; where they are gone and the
 // checkpoint is of another layout, it does not go on, and says what to do.
 func TestTrafficOtherVersion(t *testing.T) {
-	suite, err := sensor.ParseSuite("road", []byte(roadSuite))
+	suite, err := sensor.ParseSuite("road", []byte(scenes.TwoPosts))
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -30,7 +29,7 @@ func TestTrafficOtherVersion(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	evs := roadEvents()
+	evs := scenes.PastTwoPosts(began)
 	for i, ev := range evs {
 		if evs[i], err = wire.ToEvent(wire.FromEvent(ev)); err != nil {
 			t.Fatal(err)
@@ -82,15 +81,13 @@ func TestTrafficOtherVersion(t *testing.T) {
 			l.stop(limited(t)) // writes a checkpoint
 		}
 	}
-	// Its records are gone, and its checkpoint is of another layout.
+	// Its records are gone, and its checkpoint is of an earlier layout.
 	road := &roadSession{watch: alone, suite: suite}
 	state := road.Checkpoint()
-	n := len(state) - 4
-	state[16+4] ^= 1
-	state = binary.LittleEndian.AppendUint32(slices.Clip(state[:n]), crc32.Checksum(state[16:n], crc32.MakeTable(crc32.Castagnoli)))
+	state = append(state[:16:16], exact.Seal("LLT1", 0, nil)...)
 	old := &history{open: &leadlinev1.Open{Header: h, Drive: "d"}, check: &checkpointRecord{Version: "v0", Build: "that of then"}, state: state}
 	_, err = l.s.replay(old, &mapUse{sessions: 1}, session.Config{Vehicle: "r", Suite: suite}, nil)
-	if got := saidBy(err); got.reason != leadlinev1.Reason_REASON_JOURNAL_DAMAGED || !strings.Contains(got.message, traffic.ErrLayout.Error()) || !strings.Contains(got.message, "use that version") {
+	if got := saidBy(err); got.reason != leadlinev1.Reason_REASON_JOURNAL_DAMAGED || !strings.Contains(got.message, exact.ErrLayout.Error()) || !strings.Contains(got.message, "use that version") {
 		t.Errorf("of another layout: %v", err)
 	}
 	l.stop(limited(t))

@@ -1,10 +1,7 @@
 package session
 
 import (
-	"encoding/binary"
-	"errors"
 	"fmt"
-	"hash/crc32"
 	"slices"
 
 	"leadline/engine/exact"
@@ -15,21 +12,11 @@ import (
 )
 
 // A checkpoint is a session in bytes: who restores it goes on as if nothing had
-// been, to the same posteriors bit for bit. Little endian,
-//
-//	4  "LLS1"
-//	8  the layout: another one where anything in a session is made differently
-//	   the map's fingerprint, the vehicle, MaxCells, the session (engine/exact)
-//	4  CRC-32C of all before
+// been, to the same posteriors bit for bit. In the envelope of engine/exact lie the
+// map's fingerprint, the vehicle, MaxCells and the session.
 //
 // A search that is on its way is written as what it is made of, and begins anew.
 const checkpointMagic = "LLS1"
-
-// ErrLayout is the error of a checkpoint of another layout: of a version of this
-// program whose sessions are made differently.
-var ErrLayout = errors.New("the checkpoint is of another version of this program")
-
-var castagnoli = crc32.MakeTable(crc32.Castagnoli)
 
 // measurements are the kinds of measurements in checkpoints, by number.
 var measurements = []sensor.Measurement{
@@ -63,32 +50,22 @@ var layout = func() uint64 {
 func (s *Session) Checkpoint() []byte {
 	c := exact.Writer()
 	s.code(c, nil)
-	b := append([]byte(checkpointMagic), make([]byte, 8)...)
-	binary.LittleEndian.PutUint64(b[4:], layout)
-	b = append(b, c.Bytes()...)
-	return binary.LittleEndian.AppendUint32(b, crc32.Checksum(b, castagnoli))
+	return exact.Seal(checkpointMagic, layout, c.Bytes())
 }
 
 // Restore makes the session of a checkpoint. The configuration must be the one
-// that it began with; its start is not used. ErrLayout is the error of one of
-// another version; any other says what is wrong.
+// that it began with; its start is not used. exact.ErrLayout is the error of
+// one of another version; any other says what is wrong.
 func Restore(cfg Config, checkpoint []byte) (*Session, error) {
 	s, err := prepare(cfg)
 	if err != nil {
 		return nil, err
 	}
-	const head, tail = len(checkpointMagic) + 8, 4
-	n := len(checkpoint) - tail
-	if n < head || string(checkpoint[:4]) != checkpointMagic {
-		return nil, errors.New("session: this is no checkpoint")
+	value, err := exact.Open(checkpointMagic, layout, checkpoint)
+	if err != nil {
+		return nil, fmt.Errorf("session: %w", err)
 	}
-	if sum, want := crc32.Checksum(checkpoint[:n], castagnoli), binary.LittleEndian.Uint32(checkpoint[n:]); sum != want {
-		return nil, fmt.Errorf("session: the checkpoint is damaged: its checksum is %08x and should be %08x", sum, want)
-	}
-	if binary.LittleEndian.Uint64(checkpoint[4:]) != layout {
-		return nil, fmt.Errorf("session: %w", ErrLayout)
-	}
-	c := exact.Reader(checkpoint[head:n])
+	c := exact.Reader(value)
 	s.state.belief = &filter.Belief{Quantities: s.suite.Quantities(s.dim)}
 	if gridded(s.state.belief.Quantities) {
 		s.state.belief.Quantities, s.state.belief.Axes = nil, s.state.belief.Quantities

@@ -2,9 +2,7 @@ package session
 
 import (
 	"bytes"
-	"encoding/binary"
 	"errors"
-	"hash/crc32"
 	"math"
 	"math/rand/v2"
 	"reflect"
@@ -12,6 +10,7 @@ import (
 	"strings"
 	"testing"
 
+	"leadline/engine/exact"
 	"leadline/engine/geo"
 	"leadline/engine/sensor"
 )
@@ -164,11 +163,14 @@ func TestWrongCheckpoints(t *testing.T) {
 		}
 	}
 	good := s.Checkpoint()
-	change := func(f func(b []byte) []byte) []byte { return f(slices.Clone(good)) }
-	sealed := func(b []byte) []byte {
-		n := len(b) - 4
-		binary.LittleEndian.PutUint32(b[n:], crc32.Checksum(b[:n], castagnoli))
-		return b
+	flipped := slices.Clone(good)
+	flipped[len(good)/3] ^= 4
+	value, err := exact.Open(checkpointMagic, layout, good)
+	if err != nil {
+		t.Fatal(err)
+	}
+	within := func(f func(value []byte) []byte) []byte {
+		return exact.Seal(checkpointMagic, layout, f(slices.Clone(value)))
 	}
 	elsewhere := c
 	elsewhere.Vehicle = "w"
@@ -183,18 +185,17 @@ func TestWrongCheckpoints(t *testing.T) {
 		{"nothing", c, nil, "no checkpoint"},
 		{"another file", c, []byte("GIF89a and so on, for a while"), "no checkpoint"},
 		{"cut off", c, good[:len(good)/2], "checksum"},
-		{"a flipped bit", c, change(func(b []byte) []byte { b[len(b)/3] ^= 4; return b }), "checksum"},
-		{"a sealed flipped length", c, change(func(b []byte) []byte { b[12] ^= 0x40; return sealed(b) }), "damaged"},
+		{"a flipped bit", c, flipped, "checksum"},
+		{"a sealed flipped length", c, within(func(b []byte) []byte { b[0] ^= 0x40; return b }), "damaged"},
 		{"another vehicle", elsewhere, good, `of vehicle "v"`},
 		{"another map", other, good, "damaged"},
-		{"bytes left over", c, change(func(b []byte) []byte { return sealed(append(b, 0, 0, 0, 0)) }), "left over"},
+		{"bytes left over", c, within(func(b []byte) []byte { return append(b, 0, 0, 0, 0) }), "left over"},
 	} {
 		if _, err := Restore(w.c, w.b); err == nil || !strings.Contains(err.Error(), w.want) {
 			t.Errorf("%s: %v, want %q", w.name, err, w.want)
 		}
 	}
-	old := change(func(b []byte) []byte { b[5] ^= 1; return sealed(b) })
-	if _, err := Restore(c, old); !errors.Is(err, ErrLayout) {
+	if _, err := Restore(c, exact.Seal(checkpointMagic, layout+1, value)); !errors.Is(err, exact.ErrLayout) {
 		t.Errorf("another layout: %v", err)
 	}
 }
@@ -210,15 +211,15 @@ func FuzzRestore(f *testing.F) {
 			f.Fatal(err)
 		}
 		if i%13 == 0 {
-			b := s.Checkpoint()
-			f.Add(b[12 : len(b)-4])
+			value, err := exact.Open(checkpointMagic, layout, s.Checkpoint())
+			if err != nil {
+				f.Fatal(err)
+			}
+			f.Add(value)
 		}
 	}
 	f.Fuzz(func(t *testing.T, body []byte) {
-		b := binary.LittleEndian.AppendUint64([]byte(checkpointMagic), layout)
-		b = append(b, body...)
-		b = binary.LittleEndian.AppendUint32(b, crc32.Checksum(b, castagnoli))
-		r, err := Restore(c, b)
+		r, err := Restore(c, exact.Seal(checkpointMagic, layout, body))
 		if err != nil {
 			return
 		}

@@ -2,11 +2,9 @@ package traffic
 
 import (
 	"crypto/sha256"
-	"encoding/binary"
 	"encoding/hex"
 	"errors"
 	"fmt"
-	"hash/crc32"
 	"math"
 	"slices"
 
@@ -16,25 +14,12 @@ import (
 )
 
 // A checkpoint is a watch in bytes: who restores it goes on as if nothing had
-// been, bit for bit. Little endian,
-//
-//	4  "LLT2"
-//	8  the layout: another one where anything in a watch is made differently
-//	   the road, posts and figures as a hash, and the watch (engine/exact)
-//	4  CRC-32C of all before
-//
-// "LLT1" had no layout.
+// been, bit for bit. In the envelope of engine/exact lie the road, posts and figures
+// as a hash, and the watch. "LLT1" had no layout.
 const (
-	checkpointMagic   = "LLT2"
-	withoutLayout     = "LLT1"
-	headBytes, crcLen = len(checkpointMagic) + 8, 4
+	checkpointMagic = "LLT2"
+	withoutLayout   = "LLT1"
 )
-
-// ErrLayout is the error of a checkpoint of another layout: of a version of this
-// program whose watches are made differently.
-var ErrLayout = errors.New("the checkpoint is of another version of this program")
-
-var castagnoli = crc32.MakeTable(crc32.Castagnoli)
 
 // madeAs is the layout of this program.
 var madeAs = exact.Layout([]any{Watch{}}, work{}, heardAs{}, sensor.Suite{})
@@ -43,29 +28,21 @@ var madeAs = exact.Layout([]any{Watch{}}, work{}, heardAs{}, sensor.Suite{})
 func (w *Watch) Checkpoint() []byte {
 	c := exact.Writer()
 	w.code(c)
-	b := binary.LittleEndian.AppendUint64([]byte(checkpointMagic), madeAs)
-	b = append(b, c.Bytes()...)
-	return binary.LittleEndian.AppendUint32(b, crc32.Checksum(b, castagnoli))
+	return exact.Seal(checkpointMagic, madeAs, c.Bytes())
 }
 
 // Restore makes the watch of a checkpoint, by the suite that it began with.
-// ErrLayout is the error of one of another version; any other says what is wrong.
+// exact.ErrLayout is the error of one of another version; any other says what is wrong.
 func Restore(suite *sensor.Suite, checkpoint []byte) (*Watch, error) {
 	w, err := Open(suite)
 	if err != nil {
 		return nil, err
 	}
-	n := len(checkpoint) - crcLen
-	if n < headBytes || string(checkpoint[:4]) != checkpointMagic && string(checkpoint[:4]) != withoutLayout {
-		return nil, errors.New("traffic: this is no checkpoint")
+	value, err := exact.Open(checkpointMagic, madeAs, checkpoint, withoutLayout)
+	if err != nil {
+		return nil, fmt.Errorf("traffic: %w", err)
 	}
-	if sum, want := crc32.Checksum(checkpoint[:n], castagnoli), binary.LittleEndian.Uint32(checkpoint[n:]); sum != want {
-		return nil, fmt.Errorf("traffic: the checkpoint is damaged: its checksum is %08x and should be %08x", sum, want)
-	}
-	if string(checkpoint[:4]) == withoutLayout || binary.LittleEndian.Uint64(checkpoint[4:]) != madeAs {
-		return nil, fmt.Errorf("traffic: %w", ErrLayout)
-	}
-	c := exact.Reader(checkpoint[headBytes:n])
+	c := exact.Reader(value)
 	w.code(c)
 	if err := c.Done(); err != nil {
 		return nil, fmt.Errorf("traffic: the checkpoint is damaged: %w", err)

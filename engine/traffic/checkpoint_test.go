@@ -1,15 +1,14 @@
 package traffic
 
 import (
-	"encoding/binary"
 	"errors"
-	"hash/crc32"
 	"path/filepath"
 	"reflect"
 	"slices"
 	"strings"
 	"testing"
 
+	"leadline/engine/exact"
 	"leadline/engine/geo"
 	"leadline/engine/sensor"
 )
@@ -104,22 +103,23 @@ func TestLayout(t *testing.T) {
 		t.Fatal(err)
 	}
 	good := w.Checkpoint()
-	sealed := func(b []byte) []byte {
-		n := len(b) - crcLen
-		return binary.LittleEndian.AppendUint32(b[:n:n], crc32.Checksum(b[:n], castagnoli))
+	value, err := exact.Open(checkpointMagic, madeAs, good)
+	if err != nil {
+		t.Fatal(err)
 	}
-	other := slices.Clone(good)
-	other[5] ^= 1
-	old := append([]byte(withoutLayout), good[headBytes:]...)
+	damaged := slices.Clone(good)
+	damaged[5] ^= 1
 	for what, c := range map[string]struct {
 		b    []byte
 		want bool
 	}{
-		"another layout": {sealed(other), true}, "from before there were layouts": {sealed(old), true},
-		"a damaged layout": {other, false}, "nothing": {nil, false}, "another file": {[]byte("GIF89a and so on, for a while"), false},
-		"a head alone": {sealed(append(slices.Clone(good[:headBytes]), 0, 0, 0, 0)), false},
+		"another layout":                 {exact.Seal(checkpointMagic, madeAs+1, value), true},
+		"from before there were layouts": {exact.Seal(withoutLayout, 0, value), true},
+		"a damaged layout":               {damaged, false},
+		"another file":                   {[]byte("GIF89a and so on, for a while"), false},
+		"nothing within":                 {exact.Seal(checkpointMagic, madeAs, nil), false},
 	} {
-		if _, err := Restore(suite, c.b); err == nil || errors.Is(err, ErrLayout) != c.want {
+		if _, err := Restore(suite, c.b); err == nil || errors.Is(err, exact.ErrLayout) != c.want {
 			t.Errorf("%s: %v", what, err)
 		}
 	}
@@ -187,12 +187,13 @@ func FuzzRestore(f *testing.F) {
 	if err != nil {
 		f.Fatal(err)
 	}
-	good := w.Checkpoint()
-	f.Add(good[headBytes : len(good)-crcLen])
+	value, err := exact.Open(checkpointMagic, madeAs, w.Checkpoint())
+	if err != nil {
+		f.Fatal(err)
+	}
+	f.Add(value)
 	f.Fuzz(func(t *testing.T, body []byte) {
-		b := append(binary.LittleEndian.AppendUint64([]byte(checkpointMagic), madeAs), body...)
-		b = binary.LittleEndian.AppendUint32(b, crc32.Checksum(b, castagnoli))
-		if w, err := Restore(suite, b); err == nil {
+		if w, err := Restore(suite, exact.Seal(checkpointMagic, madeAs, body)); err == nil {
 			w.Checkpoint()
 		}
 	})
