@@ -64,6 +64,8 @@ type Step struct {
 	// Gaussian: motion that depends on where a vehicle is or which way it
 	// faces. It cannot be used on a plane without quantities.
 	Local Local
+
+	spare []float64 // memory for F
 }
 
 // Local computes position-dependent motion for n Gaussians: the shift of the
@@ -82,11 +84,24 @@ func NewStep(k int) Step {
 	return Step{Add: make([]float64, k), Q: make([]float64, k*(k+1)/2)}
 }
 
+// Reset makes it a step over k quantities that changes nothing, keeping what memory
+// there is.
+func (s *Step) Reset(k int) {
+	s.Add, s.Q = resize(s.Add, k), resize(s.Q, k*(k+1)/2)
+	clear(s.Add)
+	clear(s.Q)
+	if s.F != nil {
+		s.spare = s.F
+	}
+	s.F, s.Local = nil, nil
+}
+
 // SetF sets element (i, j) of F, making F the identity first if it is nil.
 func (s *Step) SetF(i, j int, v float64) {
 	k := len(s.Add)
 	if s.F == nil {
-		s.F = make([]float64, k*k)
+		s.F = resize(s.spare, k*k)
+		clear(s.F)
 		for d := range k {
 			s.F[d*k+d] = 1
 		}

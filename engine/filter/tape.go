@@ -139,7 +139,7 @@ func (mv *mover) note(g *gaussian) {
 
 // take copies the step of a move, and of a Local what it made of it.
 func (u *turn) take(step Step, w *Workspace, n, k int) {
-	u.step = Step{slices.Clone(step.F), slices.Clone(step.Add), slices.Clone(step.Q), step.Local}
+	u.step = Step{F: slices.Clone(step.F), Add: slices.Clone(step.Add), Q: slices.Clone(step.Q), Local: step.Local}
 	if step.Local != nil {
 		u.add, u.f = slices.Clone(w.add[:n]), slices.Clone(w.f[:n*k])
 	}

@@ -24,16 +24,29 @@ const alignmentM = 5.0
 // whatever n. ok is false if nothing was travelled or the belief has no
 // heading.
 func RoadAlignment(qs []filter.Quantity, travelledM float64) (l filter.LinearLikelihood, ok bool) {
+	var a Alignment
+	return a.Road(qs, travelledM)
+}
+
+// Alignment is the memory of a RoadAlignment. The zero value is ready.
+type Alignment struct {
+	l     alignment
+	parts [2]filter.NoisePart
+}
+
+// Road is RoadAlignment in this memory: it holds until the next call.
+func (a *Alignment) Road(qs []filter.Quantity, travelledM float64) (l filter.LinearLikelihood, ok bool) {
 	h := filter.Index(qs, filter.Heading)
 	power := math.Min(1, math.Abs(travelledM)/alignmentM)
 	if h < 0 || !(power > 0) || filter.Index(qs, filter.Along) != 0 {
 		return nil, false
 	}
-	return &alignment{heading: h, noise: filter.Noise{
-		// The variances are the position's own.
-		Parts:      []filter.NoisePart{{Weight: 0.99 * (1 - turningShare)}, {Weight: 0.99 * turningShare}},
-		FlatWeight: 0.01, FlatDensity: 1 / (2 * math.Pi), Power: power,
-	}}, true
+	// The variances are the position's own.
+	a.parts = [2]filter.NoisePart{{Weight: 0.99 * (1 - turningShare)}, {Weight: 0.99 * turningShare}}
+	a.l = alignment{heading: h, noise: filter.Noise{
+		Parts: a.parts[:], FlatWeight: 0.01, FlatDensity: 1 / (2 * math.Pi), Power: power,
+	}}
+	return &a.l, true
 }
 
 const (

@@ -44,9 +44,15 @@ var NoHeading = math.Inf(1)
 // spread (type Vehicle, gapPrior), or is gone through with the velocity that is
 // estimated (coast); a turn that nobody measures, turnVar.
 func (m *Motion) Step(qs []filter.Quantity, dim int, frame geo.Frame, pose Pose) (filter.Step, error) {
+	var s filter.Step
+	err := m.StepInto(&s, qs, dim, frame, pose)
+	return s, err
+}
+
+// StepInto is Step into s, whose memory it keeps: nothing else may hold what s was.
+func (m *Motion) StepInto(s *filter.Step, qs []filter.Quantity, dim int, frame geo.Frame, pose Pose) error {
 	mustDim(dim)
-	k := max(len(qs), dim)
-	s := filter.NewStep(k)
+	s.Reset(max(len(qs), dim))
 	heading := filter.Index(qs, filter.Heading)
 	scale := filter.Index(qs, filter.OdometerScale)
 	b := m.body()
@@ -59,23 +65,23 @@ func (m *Motion) Step(qs []filter.Quantity, dim int, frame geo.Frame, pose Pose)
 		s.Add[heading] = b.turn
 		s.Q[filter.Packed(heading, heading)] += b.turnVar + m.Suite.Vehicle.turnVar(gap)
 		if bias := filter.Index(qs, filter.GyroBias); bias >= 0 && b.biasS > 0 {
-			drive(&s, qs, bias, m.Seconds(), []int{heading}, []float64{-b.biasS})
+			drive(s, qs, bias, m.Seconds(), []int{heading}, []float64{-b.biasS})
 		}
 	}
 	var covered Time
 	var err error
 	var plus [2]float64 // the mean motion in a gap
 	if dim == 1 {
-		covered = m.roadStep(&s, b, g, frame, pose, scale)
+		covered = m.roadStep(s, b, g, frame, pose, scale)
 	} else {
-		covered, err = m.planeStep(&s, b, g, frame, pose, qs)
+		covered, err = m.planeStep(s, b, g, frame, pose, qs)
 	}
 	if err != nil {
-		return s, err
+		return err
 	}
 	switch gapS := float64(m.To-m.From-covered) / 1e9; {
 	case gapS > 0 && velocityIn(qs, dim) >= 0:
-		coast(&s, qs, dim, gapS)
+		coast(s, qs, dim, gapS)
 	case gapS > 0:
 		mean, v := m.Suite.Vehicle.gap(dim).step(m.GapAgeS, gapS, m.HasVelocity)
 		for i := range dim {
@@ -92,7 +98,7 @@ func (m *Motion) Step(qs []filter.Quantity, dim int, frame geo.Frame, pose Pose)
 	case *bodyMotion:
 		l.plus = plus
 	}
-	return s, nil
+	return nil
 }
 
 func (m *Motion) roadStep(s *filter.Step, b body, g ground, frame geo.Frame, pose Pose, scale int) Time {

@@ -118,12 +118,13 @@ func (s *Session) moveAside() {
 		at, heading, variance := a.loose.Heaviest()
 		known := m.HasVelocity
 		m.HasVelocity = false // that is a velocity along the road
-		step, err := m.Step(a.loose.Quantities, 2, s.space.Frame(), sensor.Pose{At: at, HeadingRad: heading, HeadingVar: variance})
+		step := &s.desk().aside
+		err := m.StepInto(step, a.loose.Quantities, 2, s.space.Frame(), sensor.Pose{At: at, HeadingRad: heading, HeadingVar: variance})
 		m.HasVelocity = known
 		if err != nil {
 			panic("session: " + err.Error()) // it has a heading
 		}
-		a.loose.Predict(step, &s.desk().work)
+		a.loose.Predict(*step, &s.desk().work)
 	}
 	if s.rates.off > 0 {
 		s.exchange(travelled)

@@ -4,6 +4,7 @@ import (
 	"sync"
 
 	"leadline/engine/filter"
+	"leadline/engine/sensor"
 	"leadline/engine/summary"
 )
 
@@ -15,7 +16,10 @@ type desk struct {
 	cloud  filter.Cloud
 	ground filter.Columns // under the cloud, on a plane
 	sum    summary.Summarizer
-	widest int // the most cells of a belief that it was used for
+	// The motion's step, that of what is beside the belief, the comparison with the road.
+	step, aside filter.Step
+	alignment   sensor.Alignment
+	widest      int // the most cells of a belief that it was used for
 }
 
 // Desks are what many sessions work with by turns, who all do little at a time: each

@@ -139,14 +139,13 @@ func (s *Session) predict() {
 	}
 }
 
-// motionStep is the step of the motion that was gathered.
+// motionStep is the step of the motion that was gathered, until the next call.
 func (s *Session) motionStep() filter.Step {
-	st := &s.state
-	step, err := s.motion.Step(st.belief.Moved(), s.dim, s.space.Frame(), st.pose)
-	if err != nil {
+	st, step := &s.state, &s.desk().step
+	if err := s.motion.StepInto(step, st.belief.Moved(), s.dim, s.space.Frame(), st.pose); err != nil {
 		panic(fmt.Sprintf("session: %v", err)) // Supports refuses what a step cannot take
 	}
-	return step
+	return *step
 }
 
 // predictBy moves the belief by a step and keeps what the motion tells.
@@ -193,6 +192,6 @@ func (s *Session) followsRoad(travelledM float64) filter.LinearLikelihood {
 	if l, ok := s.motion.CrossTrack(s.space.Frame(), s.state.pose); ok {
 		return l
 	}
-	l, _ := sensor.RoadAlignment(s.state.belief.Quantities, travelledM)
+	l, _ := s.desk().alignment.Road(s.state.belief.Quantities, travelledM)
 	return l
 }
