@@ -5,7 +5,6 @@ package replay
 import (
 	"errors"
 	"fmt"
-	"os"
 	"unsafe"
 
 	"golang.org/x/sys/unix"
@@ -13,10 +12,9 @@ import (
 	"leadline/engine/study/score"
 )
 
-// spill is a file of truths as they lie in memory, for this process alone: it has no
-// name any more once it is made.
+// spill is a file of truths as they lie in memory.
 type spill struct {
-	f      *os.File
+	f      *Scratch
 	n      int
 	mapped []byte
 }
@@ -24,12 +22,9 @@ type spill struct {
 const truthBytes = int(unsafe.Sizeof(score.Truth{}))
 
 func newSpill() (*spill, error) {
-	f, err := os.CreateTemp("", "leadline-truths-")
+	f, err := NewScratch("truths")
 	if err != nil {
-		return nil, fmt.Errorf("truths of a long drive go into a file: %w", err)
-	}
-	if err := os.Remove(f.Name()); err != nil {
-		return nil, errors.Join(fmt.Errorf("truths of a long drive go into a file: %w", err), f.Close())
+		return nil, err
 	}
 	return &spill{f: f}, nil
 }
@@ -41,7 +36,7 @@ func (s *spill) write(list []score.Truth) error {
 	// Truth holds numbers alone.
 	b := unsafe.Slice((*byte)(unsafe.Pointer(&list[0])), len(list)*truthBytes)
 	if _, err := s.f.Write(b); err != nil {
-		return fmt.Errorf("truths of a long drive go into a file: %w: free some room there, or set TMPDIR", err)
+		return s.f.Trouble(err)
 	}
 	s.n += len(list)
 	return nil

@@ -2,21 +2,20 @@ package sweep
 
 import (
 	"errors"
-	"fmt"
-	"os"
 
 	"leadline/engine/sensor"
 	"leadline/engine/session"
+	"leadline/engine/study/replay"
 )
 
 // settled are the events of a run as the session took them, for looking back: in memory,
-// or, of more than mostSettled, in a file without a name. The zero value is ready.
+// or, of more than mostSettled, in a file. The zero value is ready.
 type settled struct {
 	events []sensor.Event // not in the file yet
 	n      int
-	file   *os.File // nil: all are in events
-	ends   []int64  // of the file's blocks
-	block  int      // that is in read
+	file   *replay.Scratch // nil: all are in events
+	ends   []int64         // of the file's blocks
+	block  int             // that is in read
 	read   []sensor.Event
 	err    error // the first
 }
@@ -43,18 +42,10 @@ func (s *settled) add(events []sensor.Event) {
 
 // spill writes all whole blocks.
 func (s *settled) spill() {
-	fail := func(err error) {
-		if err != nil && s.err == nil {
-			s.err = fmt.Errorf("measurements of a long drive go into a file for looking back: %w: free some room there, or set TMPDIR", err)
-		}
-	}
 	if s.file == nil {
-		var err error
-		if s.file, err = os.CreateTemp("", "leadline-measurements-"); err != nil {
-			fail(err)
+		if s.file, s.err = replay.NewScratch("measurements for looking back"); s.err != nil {
 			return
 		}
-		fail(os.Remove(s.file.Name()))
 	}
 	whole := len(s.events) / ofBlock * ofBlock
 	end := int64(0)
@@ -64,7 +55,7 @@ func (s *settled) spill() {
 	for i := 0; i < whole && s.err == nil; i += ofBlock {
 		b := session.PackEvents(s.events[i : i+ofBlock])
 		_, err := s.file.WriteAt(b, end)
-		fail(err)
+		s.err = s.file.Trouble(err)
 		end += int64(len(b))
 		s.ends = append(s.ends, end)
 	}
@@ -109,7 +100,7 @@ func (s *settled) Read(from int) ([]sensor.Event, error) {
 // drop gives the file back.
 func (s *settled) drop() {
 	if s.file != nil {
-		_ = s.file.Close() // it has no name
+		_ = s.file.Close() // nobody needs it any more
 	}
 	*s = settled{}
 }
