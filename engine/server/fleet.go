@@ -16,6 +16,7 @@ import (
 	leadlinev1 "leadline/proto/leadline/v1"
 
 	"google.golang.org/grpc/status"
+	"google.golang.org/protobuf/proto"
 	"google.golang.org/protobuf/types/known/timestamppb"
 )
 
@@ -120,12 +121,28 @@ func (s *Server) EndDrive(ctx context.Context, req *leadlinev1.EndDriveRequest) 
 	}
 	select {
 	case e := <-ended:
-		return &leadlinev1.EndDriveResponse{Closed: e.closed}, e.err
+		return &leadlinev1.EndDriveResponse{Closed: readable(ctx, o.vehicle, e.closed)}, e.err
 	case <-o.dead:
 		return nil, o.err
 	case <-ctx.Done():
 		return nil, status.FromContextError(ctx.Err()).Err()
 	}
+}
+
+// readable is how a drive ended, for who asks: whoever may not ask where its vehicle
+// is reads no position here either.
+func readable(ctx context.Context, vehicle string, c *leadlinev1.Closed) *leadlinev1.Closed {
+	caller := callerOf(ctx)
+	if c == nil || caller == nil {
+		return c
+	}
+	where := &leadlinev1.WhereRequest{Vehicles: []string{vehicle}}
+	if allows(leadlinev1.PositionService_Where_FullMethodName, caller, where) == nil {
+		return c
+	}
+	c = proto.CloneOf(c)
+	c.Posterior, c.Traffic = nil, nil
+	return c
 }
 
 // ListSuites lists the suites that drives may use: see the .proto file.

@@ -15,6 +15,7 @@ import (
 
 	"leadline/engine/client"
 	"leadline/engine/sensor"
+	"leadline/engine/wire"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
@@ -138,6 +139,48 @@ func TestEndDrive(t *testing.T) {
 	}
 	if r, err := ask.ListVehicles(limited(t), &leadlinev1.ListVehiclesRequest{}); err != nil || !r.GetVehicles()[1].GetEnded() {
 		t.Errorf("listed: %v, %v", r, err)
+	}
+}
+
+// TestEndDriveUnseen proves that who ends a drive and may not ask where its vehicle is
+// gets no position with the answer; the vehicle itself and who may ask do.
+func TestEndDriveUnseen(t *testing.T) {
+	conn, token := tokenServer(t, Config{MaxCells: 10000})
+	ask := leadlinev1.NewPositionServiceClient(conn)
+	feed := func(name string) {
+		t.Helper()
+		f, err := client.Open(showing(t, token(name, "roles", "vehicle")), conn, client.Drive{Header: header(name), Name: "d"})
+		if err != nil {
+			t.Fatal(err)
+		}
+		for _, ev := range voyage(1, 5) {
+			if err := f.Send(wire.FromEvent(ev)); err != nil {
+				t.Fatal(err)
+			}
+		}
+		if err := f.Leave(); err != nil {
+			t.Fatal(err)
+		}
+	}
+	for _, c := range []struct {
+		vehicle, caller string
+		roles           any
+		seen            bool
+	}{
+		{"a", "a", "vehicle", true},
+		{"b", "clerk", "administrator", false},
+		{"c", "chief", []string{"administrator", "dispatcher"}, true},
+	} {
+		feed(c.vehicle)
+		for range 2 { // the second is told of a drive that has ended
+			r, err := ask.EndDrive(showing(t, token(c.caller, "roles", c.roles)), &leadlinev1.EndDriveRequest{Vehicle: c.vehicle})
+			if err != nil {
+				t.Fatal(err)
+			}
+			if got := r.GetClosed(); (got.GetPosterior() != nil) != c.seen || got.GetPosteriors() == 0 || got.GetPosteriorSha256() == "" {
+				t.Errorf("%s as %v: %v", c.vehicle, c.roles, got)
+			}
+		}
 	}
 }
 

@@ -348,7 +348,8 @@ func (x *EndDriveRequest) GetDrive() string {
 	return ""
 }
 
-// EndDriveResponse is what the vehicle would have got.
+// EndDriveResponse is what the vehicle would have got; without the position for who
+// may not ask Where it is.
 type EndDriveResponse struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
 	Closed        *Closed                `protobuf:"bytes,1,opt,name=closed,proto3" json:"closed,omitempty"`

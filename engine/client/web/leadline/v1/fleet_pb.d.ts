@@ -201,7 +201,8 @@ export declare type EndDriveRequest = Message<"leadline.v1.EndDriveRequest"> & {
 export declare const EndDriveRequestSchema: GenMessage<EndDriveRequest>;
 
 /**
- * EndDriveResponse is what the vehicle would have got.
+ * EndDriveResponse is what the vehicle would have got; without the position for who
+ * may not ask Where it is.
  *
  * @generated from message leadline.v1.EndDriveResponse
  */
