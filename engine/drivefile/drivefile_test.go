@@ -156,6 +156,8 @@ func TestBadLines(t *testing.T) {
 		{strings.Replace(head, "van", "", 1), "f:1: header: vehicle is missing"},
 		{strings.Replace(head, `"map":"town"`, `"start":{"point":{"lon":1,"lat":2}}`, 1), "f:1: header: start: point: sigma_m is 0: it must be positive"},
 		{strings.Replace(head, `"map":"town"`, `"start":{"area":{}}`, 1), "f:1: header: start: area: no ring"},
+		{strings.Replace(head, `"map":"town"`, `"posterior_interval_s":-1`, 1), "f:1: header: posterior_interval_s is -1: it must be from 0 to 3600 seconds"},
+		{strings.Replace(head, `"map":"town"`, `"traffic":true,"posterior_interval_s":1`, 1), "f:1: header: traffic has no posteriors"},
 	} {
 		r := NewReader(strings.NewReader(c.in), "f")
 		var err error

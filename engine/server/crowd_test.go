@@ -42,7 +42,7 @@ func TestCrowd(t *testing.T) {
 	const cells = 1000
 	wants := make([]string, n)
 	for i := range n {
-		wants[i], _, _ = replayedIn(t, cells, voyage(uint64(i), seconds))
+		wants[i], _, _ = replayedIn(t, cells, 0, voyage(uint64(i), seconds))
 	}
 	before := heap()
 	var mostHeap uint64

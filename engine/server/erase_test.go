@@ -63,7 +63,7 @@ func TestEraseVehicle(t *testing.T) {
 	dir := t.TempDir()
 	l := &life{t: t, cfg: Config{Journal: &journal.Options{Dir: dir, FreeBytes: 1, Partitions: 1}, Build: "this", MaxCells: 1000}}
 	evs := voyage(3, 30)
-	want, _, _ := replayedIn(t, 1000, evs)
+	want, _, _ := replayedIn(t, 1000, 0, evs)
 	own := voyage(77, 30)
 	hint := traces(t, "tell-tale van", own[3])
 	h := header("tell-tale van")
@@ -202,7 +202,7 @@ func TestKeepFor(t *testing.T) {
 	dir := t.TempDir()
 	l := &life{t: t, cfg: Config{Journal: &journal.Options{Dir: dir, FreeBytes: 1, Partitions: 1}, KeepFor: time.Second, Build: "this", MaxCells: 1000}}
 	evs := voyage(3, 40)
-	want, _, _ := replayedIn(t, 1000, evs)
+	want, _, _ := replayedIn(t, 1000, 0, evs)
 	l.start()
 	conn, err := client.Dial(l.addr)
 	if err != nil {

@@ -349,7 +349,7 @@ func TestFields(t *testing.T) {
 		t.Fatal(err)
 	}
 	beside := voyage(2, 20)
-	want, _, _ := replayedIn(t, cells, beside)
+	want, _, _ := replayedIn(t, cells, 0, beside)
 	f, err := client.Open(t.Context(), conn, client.Drive{Header: header("beside"), Batch: 1})
 	if err != nil {
 		t.Fatal(err)

@@ -176,14 +176,15 @@ func voyage(seed uint64, n int) []sensor.Event {
 // replayed runs a voyage through a session without a server.
 func replayed(t *testing.T, evs []sensor.Event) (hash string, released, times int) {
 	t.Helper()
-	return replayedIn(t, 0, evs)
+	return replayedIn(t, 0, 0, evs)
 }
 
-// replayedIn does so with a belief of at most so many cells.
-func replayedIn(t *testing.T, maxCells int, evs []sensor.Event) (hash string, released, times int) {
+// replayedIn does so with a belief of at most so many cells, and a posterior each
+// time or at most each so many seconds.
+func replayedIn(t *testing.T, maxCells int, posteriorS float64, evs []sensor.Event) (hash string, released, times int) {
 	t.Helper()
 	s, err := session.New(session.Config{
-		Vehicle: "v", Space: sea().Space, MaxCells: maxCells,
+		Vehicle: "v", Space: sea().Space, MaxCells: maxCells, PosteriorS: posteriorS,
 		Start: session.Start{Kind: session.AtPoint, Point: middle, SigmaM: 100},
 	})
 	if err != nil {

@@ -99,7 +99,7 @@ func TestClocks(t *testing.T) {
 				evs[i].Measurement = d
 			}
 		}
-		want, _, _ := replayedIn(t, 1000, evs)
+		want, _, _ := replayedIn(t, 1000, 0, evs)
 		jump := evs[len(evs)-1]
 		jump.Time += 365 * 24 * 3600 * 1e9
 		jump.Sensor, jump.Measurement = "jump", sensor.Fix{Position: middle, SigmaM: 10}

@@ -135,9 +135,14 @@ func (l *life) stop(ctx context.Context) {
 func TestRestart(t *testing.T) {
 	evs := voyage(3, 60)
 	const cells = 1000 // few cost little
-	want, _, times := replayedIn(t, cells, evs)
-	for _, o := range []*journal.Options{keptIn(t.TempDir()), atBroker(t)} {
-		l := &life{t: t, cfg: Config{Journal: o, Build: "this", MaxCells: cells}}
+	for _, c := range []struct {
+		kept       *journal.Options
+		posteriorS float64 // a posterior at most so often
+	}{{keptIn(t.TempDir()), 0}, {keptIn(t.TempDir()), 3}, {atBroker(t), 0}} {
+		h := header("v")
+		h.PosteriorIntervalS = c.posteriorS
+		want, _, times := replayedIn(t, cells, c.posteriorS, evs)
+		l := &life{t: t, cfg: Config{Journal: c.kept, Build: "this", MaxCells: cells}}
 		rng := rand.New(rand.NewPCG(1, 2))
 		sent, starts := 0, 0
 		for sent < len(evs) {
@@ -146,7 +151,7 @@ func TestRestart(t *testing.T) {
 			if err != nil {
 				t.Fatal(err)
 			}
-			f, err := client.Open(limited(t), conn, client.Drive{Header: header("v"), Name: "d", Batch: 1, Continue: true})
+			f, err := client.Open(limited(t), conn, client.Drive{Header: h, Name: "d", Batch: 1, Continue: true})
 			if err != nil {
 				t.Fatal(err)
 			}
@@ -183,7 +188,7 @@ func TestRestart(t *testing.T) {
 		if err != nil || !before.GetPosterior().GetDurable() || !before.GetPosterior().GetRecomputed() {
 			t.Errorf("a restored drive is at %v, %v", before, err)
 		}
-		closed, err := fed(limited(t), conn, client.Drive{Header: header("v"), Name: "d", Batch: 1}, evs)
+		closed, err := fed(limited(t), conn, client.Drive{Header: h, Name: "d", Batch: 1}, evs)
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -199,7 +204,7 @@ func TestRestart(t *testing.T) {
 		if err != nil {
 			t.Fatal(err)
 		}
-		again, err := fed(limited(t), conn, client.Drive{Header: header("v"), Name: "d", Batch: 1}, evs)
+		again, err := fed(limited(t), conn, client.Drive{Header: h, Name: "d", Batch: 1}, evs)
 		if err != nil || again.GetPosteriorSha256() != want {
 			t.Errorf("an ended drive that is opened again: %v, %v", again, err)
 		}
@@ -325,7 +330,7 @@ func TestFullDisk(t *testing.T) {
 	const slack = 512 << 20 // others write on this disk, too
 	s, conn := serve(t, Config{Journal: &journal.Options{Dir: filepath.Join(dir, "journal"), FreeBytes: free() - slack}, MaxCells: 1000})
 	evs := voyage(3, 20)
-	want, _, _ := replayedIn(t, 1000, evs)
+	want, _, _ := replayedIn(t, 1000, 0, evs)
 	st, _ := openRaw(t, conn, &leadlinev1.Open{Header: header("v"), Drive: "d", Reply: leadlinev1.Reply_REPLY_NONE})
 	take := func(sequence uint64) error {
 		if err := st.Send(batch(sequence, evs[8*(sequence-1):8*sequence]...)); err != nil {

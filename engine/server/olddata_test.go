@@ -85,8 +85,8 @@ func TestOldData(t *testing.T) {
 	if err := os.CopyFS(dir, os.DirFS(oldData)); err != nil {
 		t.Fatal(err)
 	}
-	want, _, _ := replayedIn(t, oldCells, oldVoyage)
-	ended, _, _ := replayedIn(t, oldCells, oldVoyage[:6])
+	want, _, _ := replayedIn(t, oldCells, 0, oldVoyage)
+	ended, _, _ := replayedIn(t, oldCells, 0, oldVoyage[:6])
 	l := &life{t: t, cfg: oldConfig(dir)}
 	l.cfg.Build = "this"
 	l.start()

@@ -13,6 +13,7 @@ import (
 
 	"leadline/engine/client"
 	"leadline/engine/sensor"
+	"leadline/engine/session"
 	"leadline/engine/wire"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
@@ -42,6 +43,8 @@ func TestBadOpen(t *testing.T) {
 		{"no map", with(func(o *leadlinev1.Open) { o.Header.Map = "" }), codes.NotFound, `no map "" here: known are "sea"`},
 		{"unknown map", with(func(o *leadlinev1.Open) { o.Header.Map = "moon" }), codes.NotFound, `no map "moon" here: known are "sea"`},
 		{"unknown suite", with(func(o *leadlinev1.Open) { o.Header.Suite = "tank" }), codes.NotFound, `no suite "tank" here: known are "boat"`},
+		{"posteriors too seldom", with(func(o *leadlinev1.Open) { o.Header.PosteriorIntervalS = session.MaxPosteriorS + 1 }), codes.InvalidArgument, "posterior_interval_s is 3601: it must be from 0 to 3600 seconds"},
+		{"posteriors never", with(func(o *leadlinev1.Open) { o.Header.PosteriorIntervalS = math.NaN() }), codes.InvalidArgument, "posterior_interval_s is NaN: it must be from 0 to 3600 seconds"},
 		{"start without sigma", with(func(o *leadlinev1.Open) { o.Header.Start = point(5, 53, 0) }), codes.InvalidArgument, "start: point: sigma_m is 0"},
 		{"start with endless sigma", with(func(o *leadlinev1.Open) { o.Header.Start = point(5, 53, math.Inf(1)) }), codes.InvalidArgument, "start: point: sigma_m is +Inf"},
 		{"start nowhere", with(func(o *leadlinev1.Open) { o.Header.Start = point(math.NaN(), 53, 5) }), codes.InvalidArgument, "is not on the globe"},

@@ -79,7 +79,7 @@ func TestShare(t *testing.T) {
 	o.Shared, o.Partitions = true, 6
 	const vehicles = 8
 	evs := voyage(3, 60)
-	want, _, _ := replayedIn(t, 1000, evs)
+	want, _, _ := replayedIn(t, 1000, 0, evs)
 	a, b := among(t, o), among(t, o)
 	balanced(t, o.Partitions, a, b)
 	all := strings.Join([]string{a.addr, b.addr}, ",")
