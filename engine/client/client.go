@@ -45,11 +45,17 @@ const maxMessage = 16 << 20
 // DialSecure encrypts, and says who calls.
 func Dial(target string) (*grpc.ClientConn, error) { return DialSecure(target, Security{}) }
 
+// silentTimeout is for how long the other side's machine may say nothing to what it
+// was sent.
+const silentTimeout = 5 * time.Second
+
 // dialOptions are those of every connection.
 func dialOptions() []grpc.DialOption {
 	return []grpc.DialOption{
 		grpc.WithDefaultCallOptions(grpc.MaxCallRecvMsgSize(maxMessage)),
-		grpc.WithKeepaliveParams(keepalive.ClientParameters{Time: 30 * time.Second, Timeout: 10 * time.Second}),
+		// What is sent and not taken by the other side's machine for as long as the
+		// timeout ends the connection, too: a server that is cut off ends none.
+		grpc.WithKeepaliveParams(keepalive.ClientParameters{Time: 30 * time.Second, Timeout: silentTimeout}),
 		// A server that is started again is found soon.
 		grpc.WithConnectParams(grpc.ConnectParams{
 			Backoff:           backoff.Config{BaseDelay: shortestWait, Multiplier: 1.6, Jitter: 0.3, MaxDelay: longestWait},

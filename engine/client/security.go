@@ -47,10 +47,10 @@ func DialSecure(target string, s Security) (*grpc.ClientConn, error) {
 	options := dialOptions()
 	addresses := strings.Split(target, ",")
 	if len(addresses) > 1 {
-		r := manual.NewBuilderWithScheme("leadline")
-		r.InitialState(resolver.State{Addresses: inAnyOrder(addresses)})
-		options = append(options, grpc.WithResolvers(r))
-		target = r.Scheme() + ":///servers"
+		t := &turning{r: manual.NewBuilderWithScheme("leadline"), all: inAnyOrder(addresses)}
+		t.r.InitialState(resolver.State{Addresses: t.all})
+		options = append(options, t.options()...)
+		target = t.r.Scheme() + ":///servers"
 	}
 	if !s.encrypted() {
 		options = append(options, grpc.WithTransportCredentials(insecure.NewCredentials()))

@@ -18,7 +18,8 @@ type Why struct {
 	Reason  leadlinev1.Reason
 	Message string // what was wrong, where, and what to do: one line
 	// About says which one it was, by vehicle, drive, map, suite, field, method,
-	// limit and most (the limit's value), as far as they apply.
+	// limit and most (the limit's value), as far as they apply; server is "cut off"
+	// where another server should be called.
 	About map[string]string
 }
 

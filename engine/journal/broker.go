@@ -7,6 +7,7 @@ import (
 	"log/slog"
 	"os"
 	"strconv"
+	"sync"
 	"time"
 
 	"github.com/nats-io/nats-server/v2/server"
@@ -33,13 +34,34 @@ const startTimeout = 2 * time.Minute
 // callTimeout is for how long one call to the broker is waited for.
 const callTimeout = 10 * time.Second
 
+// askTimeout is for how long an answer is waited for before it is asked again: the
+// broker of a cluster that should have answered may be gone, and another one in its
+// place.
+const askTimeout = 2 * time.Second
+
+// dialTimeout is for how long one broker is waited for when a connection is made:
+// there may be others.
+const dialTimeout = 2 * time.Second
+
 // broker is a connection to one, and the broker itself where it is within this
 // process.
 type broker struct {
 	within *server.Server
 	conn   *nats.Conn
 	js     jetstream.JetStream
+
+	mu     sync.Mutex
+	whole  context.Context // ends when the connection breaks
+	breaks context.CancelFunc
 }
+
+// A broker that is cut off says nothing, and the connection to it would last for a
+// quarter of an hour: it is asked so often, and left after as many questions without
+// an answer, for another one of its cluster.
+const (
+	askEvery = 500 * time.Millisecond
+	asksMost = 3
+)
 
 // connect starts a broker, or connects to one.
 func connect(o *Options) (*broker, error) {
@@ -56,7 +78,7 @@ func connect(o *Options) (*broker, error) {
 
 // Dial connects to the broker, which calls the connection by a name.
 func (b *Broker) Dial(name string) (*nats.Conn, error) {
-	opts := []nats.Option{nats.Name(name), nats.MaxReconnects(-1), nats.ReconnectWait(200 * time.Millisecond), nats.Timeout(callTimeout)}
+	opts := []nats.Option{nats.Name(name), nats.MaxReconnects(-1), nats.ReconnectWait(200 * time.Millisecond), nats.Timeout(dialTimeout), nats.PingInterval(askEvery), nats.MaxPingsOutstanding(asksMost)}
 	if f := b.Credentials; f != "" {
 		if _, err := os.Stat(f); err != nil {
 			return nil, fmt.Errorf("credentials: %w", err)
@@ -105,11 +127,29 @@ func startWithin(o *Options) (*broker, error) {
 }
 
 func (b *broker) open() error {
+	b.whole, b.breaks = context.WithCancel(context.Background())
+	b.conn.SetDisconnectErrHandler(func(*nats.Conn, error) {
+		b.mu.Lock()
+		defer b.mu.Unlock()
+		b.breaks()
+		b.whole, b.breaks = context.WithCancel(context.Background())
+	})
 	var err error
 	if b.js, err = jetstream.New(b.conn, jetstream.WithDefaultTimeout(callTimeout)); err != nil {
 		b.close()
 	}
 	return err
+}
+
+// asked is the context of a call to the broker: what a broken connection asked is
+// not answered by the next one.
+func (b *broker) asked(ctx context.Context) (context.Context, context.CancelFunc) {
+	ctx, cancel := context.WithTimeout(ctx, askTimeout)
+	b.mu.Lock()
+	whole := b.whole
+	b.mu.Unlock()
+	stop := context.AfterFunc(whole, cancel)
+	return ctx, func() { stop(); cancel() }
 }
 
 func (b *broker) close() {

@@ -69,14 +69,14 @@ func (p *partition) note(number, sequence uint64, at time.Time) {
 
 // tries is how often a pack that is not in is published again before what it
 // holds is refused.
-const tries = 3
+const tries = 8
 
 // publish gives the pack in p.buf to the broker, and finds out whether it is in
 // where the broker does not say.
 func (p *partition) publish(ctx context.Context, next *pack) (sequence uint64, err error) {
 	for try := 1; ; try++ {
 		b := p.j.broker.Load()
-		call, cancel := context.WithTimeout(ctx, callTimeout)
+		call, cancel := b.asked(ctx)
 		ack, err := b.js.PublishMsg(call, &nats.Msg{Subject: p.subject, Data: p.buf, Header: nats.Header{writerHeader: {p.j.writer}}},
 			jetstream.WithExpectLastSequencePerSubject(p.last), jetstream.WithRetryAttempts(0))
 		cancel()
@@ -169,7 +169,7 @@ func (p *partition) fallDown(why error) {
 
 // lastAtBroker is the last pack of the partition; 0 if there is none.
 func (p *partition) lastAtBroker(ctx context.Context) (sequence, number, epoch uint64, writer string, err error) {
-	ctx, cancel := context.WithTimeout(ctx, callTimeout)
+	ctx, cancel := p.j.broker.Load().asked(ctx)
 	defer cancel()
 	st, err := p.j.stream(ctx)
 	if err != nil {

@@ -37,7 +37,9 @@ func (s *Server) Feed(stream feedStream) error {
 		return err
 	}
 	if vehicle := open.GetHeader().GetVehicle(); vehicle != "" {
-		here, err := s.elsewhere(ctx, vehicle, func(at share.Server) (bool, error) { return s.forwardFeed(ctx, at, stream, open, requests) })
+		here, err := s.elsewhere(ctx, vehicle, func(ctx context.Context, at share.Server) (bool, error) {
+			return s.forwardFeed(ctx, at, stream, open, requests)
+		})
 		if !here || err != nil {
 			return err
 		}
@@ -177,6 +179,8 @@ func (s *Server) carry(ctx context.Context, stream feedStream, requests <-chan r
 			paused = false
 		case <-draining:
 			draining, stopping, paused = nil, requests != nil, false
+		case <-s.cutOff():
+			return errCutOff
 		case <-ctx.Done():
 			return status.FromContextError(ctx.Err()).Err()
 		}

@@ -96,7 +96,7 @@ func (s *Server) routed(method string, handle grpc.UnaryHandler) grpc.UnaryHandl
 			defer s.eraseElsewhere(ctx, erase)
 		}
 		var resp proto.Message
-		here, err := s.elsewhere(ctx, vehicle, func(at share.Server) (bool, error) {
+		here, err := s.elsewhere(ctx, vehicle, func(ctx context.Context, at share.Server) (bool, error) {
 			c, err := s.peer(ctx, at)
 			if err == nil {
 				resp, err = pass(onward(ctx), c, req)
@@ -146,14 +146,21 @@ func unreachable(err error) bool {
 
 // elsewhere has the server that serves a vehicle do something, unless it is this
 // one (here). One that cannot be reached may be dead: then, if it can be done again,
-// another one's turn is waited for.
-func (s *Server) elsewhere(ctx context.Context, vehicle string, do func(share.Server) (again bool, err error)) (here bool, err error) {
+// another one's turn is waited for. The context that do gets ends when somebody else
+// serves the vehicle: one that is cut off says nothing, and its connection does not
+// break for a while.
+func (s *Server) elsewhere(ctx context.Context, vehicle string, do func(context.Context, share.Server) (again bool, err error)) (here bool, err error) {
 	for until := time.Now().Add(whoseWait); ; {
 		at, err := s.whoseUntil(ctx, vehicle, until)
 		if err != nil || at == nil {
 			return err == nil, err
 		}
-		again, err := do(*at)
+		stays, cancel := s.untilMoved(ctx, vehicle, *at)
+		again, err := do(stays, *at)
+		if err != nil && hasMoved(stays) {
+			err = errMoved
+		}
+		cancel()
 		if !again || time.Now().After(until) {
 			return false, s.fromPeer(*at, err)
 		}
@@ -166,6 +173,31 @@ func (s *Server) elsewhere(ctx context.Context, vehicle string, do func(share.Se
 		}
 	}
 }
+
+// untilMoved is a context that ends when somebody else than a server serves a
+// vehicle.
+func (s *Server) untilMoved(ctx context.Context, vehicle string, at share.Server) (context.Context, context.CancelFunc) {
+	ctx, cancel := context.WithCancelCause(ctx)
+	j, i := s.joined(), s.journal.Partition(vehicle)
+	go func() {
+		for {
+			now := j.Where(i)
+			if now.Server == nil || now.Server.ID != at.ID {
+				cancel(errMoved)
+				return
+			}
+			select {
+			case <-now.Changed:
+			case <-ctx.Done():
+				return
+			}
+		}
+	}()
+	return ctx, func() { cancel(nil) }
+}
+
+// hasMoved reports whether that is why the context has ended.
+func hasMoved(ctx context.Context) bool { return errors.Is(context.Cause(ctx), errMoved) }
 
 // lookAgain is after how long it is looked who serves a vehicle whose server cannot
 // be reached.
@@ -182,14 +214,14 @@ func (s *Server) forwardFeed(ctx context.Context, at share.Server, stream feedSt
 	defer cancel()
 	there, err := c.Feed(onward(ctx))
 	if err != nil {
-		return unreachable(err), err
+		return unreachable(err) || hasMoved(ctx), err
 	}
 	if err := there.Send(&leadlinev1.FeedRequest{Message: &leadlinev1.FeedRequest_Open{Open: open}}); err != nil && !errors.Is(err, io.EOF) {
-		return unreachable(err), err
+		return unreachable(err) || hasMoved(ctx), err
 	}
 	first, err := there.Recv()
 	if err != nil {
-		return unreachable(err), err
+		return unreachable(err) || hasMoved(ctx), err
 	}
 	if err := stream.Send(first); err != nil {
 		return false, err
@@ -240,6 +272,9 @@ func (s *Server) passOn(ctx context.Context, there grpc.BidiStreamingClient[lead
 		case <-s.draining:
 			_ = there.CloseSend()
 			return errStopping
+		case <-s.cutOff():
+			_ = there.CloseSend()
+			return errCutOff
 		case <-ctx.Done():
 			return nil
 		}

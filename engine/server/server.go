@@ -177,6 +177,7 @@ func (s *Server) Serve(l net.Listener) error {
 	watching.Go(s.watchLoad)
 	watching.Go(s.watchAge)
 	watching.Go(s.watchDebt)
+	watching.Go(s.watchLease)
 	defer func() { // with the server's end, also where it fails
 		s.drain.Do(func() { close(s.draining) })
 		watching.Wait()

@@ -50,6 +50,7 @@ type shared struct {
 	maps         sharedMaps
 	storing      sync.WaitGroup // of maps
 	open         []bool         // the partitions whose drives are here; srv.mu guards it
+	cut          spell          // during which this server is cut off
 }
 
 func (s *Server) openShared() {
@@ -191,6 +192,7 @@ func (s *Server) whoseUntil(ctx context.Context, vehicle string, until time.Time
 	}
 	late := time.NewTimer(time.Until(until))
 	defer late.Stop()
+	cut, nobody := s.cutOff(), error(nil)
 	for {
 		var changed <-chan struct{}
 		if j := s.joined(); j != nil {
@@ -209,7 +211,13 @@ func (s *Server) whoseUntil(ctx context.Context, vehicle string, until time.Time
 		case <-changed:
 		case <-s.draining:
 			return nil, errStopping
+		case <-cut:
+			cut, nobody = nil, errCutOff
+			late.Reset(min(time.Until(until), cutWait))
 		case <-late.C:
+			if nobody != nil {
+				return nil, nobody
+			}
 			return nil, refuse(leadlinev1.Reason_REASON_RECOVERING, about{"vehicle": vehicle}, "no server serves vehicle %q for now: one takes over what another one had: call again", clip(vehicle))
 		case <-ctx.Done():
 			return nil, gone(ctx)

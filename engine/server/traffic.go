@@ -172,7 +172,9 @@ func (s *Server) FollowTraffic(req *leadlinev1.FollowTrafficRequest, stream grpc
 	}
 	defer s.roadFollowers.Add(-1)
 	ctx := stream.Context()
-	here, err := s.elsewhere(ctx, q.GetRoad(), func(at share.Server) (bool, error) { return s.forwardTraffic(ctx, at, req, stream) })
+	here, err := s.elsewhere(ctx, q.GetRoad(), func(ctx context.Context, at share.Server) (bool, error) {
+		return s.forwardTraffic(ctx, at, req, stream)
+	})
 	if !here || err != nil {
 		return err
 	}
@@ -237,7 +239,7 @@ func (s *Server) forwardTraffic(ctx context.Context, at share.Server, req *leadl
 			return false, nil
 		}
 		if err != nil {
-			return !told && unreachable(err), err
+			return !told && (unreachable(err) || hasMoved(ctx)), err
 		}
 		if err := stream.Send(m); err != nil {
 			return false, err

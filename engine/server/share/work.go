@@ -103,6 +103,8 @@ func (s *Share) claim(ctx context.Context, do step) error {
 
 // put writes a partition's key over a revision of it: an empty owner frees it.
 func (s *Share) put(ctx context.Context, i int, owner string, over uint64) error {
+	ctx, cancel := context.WithTimeout(ctx, s.o.Lease/2) // what should have answered may be gone
+	defer cancel()
 	revision, err := s.kv.Update(ctx, partitionPrefix+strconv.Itoa(i), []byte(owner), over)
 	if err != nil {
 		return err
