@@ -20,14 +20,19 @@ func (b *Belief) Read(dst *Cloud, space Space, w *Workspace) {
 	n := len(b.Key)
 	w.locate(b, space, WantPosition)
 	for _, s := range []*[]float64{&dst.East, &dst.North, &dst.Mass, &dst.VarEE, &dst.VarEN, &dst.VarNN} {
-		*s = resize(*s, n)
+		*s = fit(*s, n)
 	}
 	copy(dst.East, w.at.East)
 	copy(dst.North, w.at.North)
 	copy(dst.Mass, b.Mass)
-	dst.Mean = append(dst.Mean[:0], b.Mean...)
+	dst.Mean = fit(dst.Mean, n*k)
+	copy(dst.Mean, b.Mean)
 	p := k * (k + 1) / 2
-	dst.Chart, dst.AlongM, dst.VarM2 = dst.Chart[:0], dst.AlongM[:0], dst.VarM2[:0]
+	lines := n
+	if b.Dim == 2 {
+		lines = 0
+	}
+	dst.Chart, dst.AlongM, dst.VarM2 = fit(dst.Chart, lines), fit(dst.AlongM, lines), fit(dst.VarM2, lines)
 	for i := range n {
 		if b.Dim == 2 {
 			dst.VarEE[i], dst.VarEN[i], dst.VarNN[i] = b.Cov[i*p], b.Cov[i*p+1], b.Cov[i*p+2]
@@ -37,10 +42,16 @@ func (b *Belief) Read(dst *Cloud, space Space, w *Workspace) {
 		dst.VarEE[i] = float64(v * float64(te*te))
 		dst.VarEN[i] = float64(v * float64(te*tn))
 		dst.VarNN[i] = float64(v * float64(tn*tn))
-		dst.Chart = append(dst.Chart, w.chart[i])
-		dst.AlongM = append(dst.AlongM, w.along[i])
-		dst.VarM2 = append(dst.VarM2, v)
+		dst.Chart[i], dst.AlongM[i], dst.VarM2[i] = w.chart[i], w.along[i], v
 	}
+}
+
+// fit is resize with little to spare: what is read is as large as the belief.
+func fit[T any](s []T, n int) []T {
+	if cap(s) < n {
+		return make([]T, n, n+n/16)
+	}
+	return s[:n]
 }
 
 func (b *Belief) readTiles(dst *Cloud) {

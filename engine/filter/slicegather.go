@@ -22,8 +22,10 @@ type sliceSpace struct {
 	dropped float64
 	lo, hi  []int32 // the cells of a new slice's rows
 	// What gatherRow takes.
+	heads   []head
 	starts  []int
 	weights []float64
+	whole   []float64 // the weights of all taps
 	partial []partial
 	sheet   sheet
 	lane    []float64
@@ -40,6 +42,12 @@ type sliceTap struct {
 	slice             int32
 	cols, rows, count int32
 	weight            [4]float64
+}
+
+// head is a tap with its slice's rows; first is where the first of them comes to lie.
+type head struct {
+	rows               []SliceRow
+	first, cols, count int32
 }
 
 func oneTap(slice, cols, rows int32, weight float64) sliceTap {
@@ -121,23 +129,31 @@ func (ss *sliceSpace) gather(dst, src *Slices, at [2]int32, floor float64) bool 
 		return false
 	}
 	top, bottom := int32(math.MaxInt32), int32(math.MinInt32)
-	for _, t := range ss.taps {
+	ss.heads, ss.whole = ss.heads[:0], ss.whole[:0]
+	for i := range ss.taps {
+		t := &ss.taps[i]
 		c := &src.At[t.slice]
 		top, bottom = min(top, c.Row+t.rows), max(bottom, c.Row+c.Count+t.rows)
+		ss.heads = append(ss.heads, head{src.Rows[c.First : c.First+c.Count], c.Row + t.rows, t.cols, t.count})
+		ss.whole = append(ss.whole, t.weight[:t.count]...)
 	}
+	ss.starts = resize(ss.starts, len(ss.whole))
 	ss.noRows(bottom - top)
-	for _, t := range ss.taps {
-		c := &src.At[t.slice]
-		lo, hi := ss.lo[c.Row+t.rows-top:], ss.hi[c.Row+t.rows-top:]
-		for k, r := range src.Rows[c.First : c.First+c.Count] {
-			if r.Len > 0 {
-				lo[k], hi[k] = min(lo[k], r.Col+t.cols), max(hi[k], r.Col+t.cols+r.Len+t.count-1)
+	for i := range ss.heads {
+		h := &ss.heads[i]
+		lo := ss.lo[h.first-top:][:len(h.rows)]
+		hi := ss.hi[h.first-top:][:len(h.rows)]
+		beyond := h.cols + h.count - 1
+		for k := range h.rows {
+			if r := &h.rows[k]; r.Len > 0 {
+				lo[k], hi[k] = min(lo[k], r.Col+h.cols), max(hi[k], r.Col+r.Len+beyond)
 			}
 		}
 	}
 	c := dst.place(at, top, ss.lo, ss.hi)
-	for _, t := range ss.taps {
-		for _, weight := range t.weight {
+	for i := range ss.taps {
+		t := &ss.taps[i]
+		for _, weight := range t.weight[:t.count] {
 			c.Mass += float64(weight * src.At[t.slice].Mass)
 		}
 	}
@@ -203,36 +219,64 @@ func (s *Slices) trim(r *SliceRow, floor float64) (gone float64) {
 	return gone
 }
 
-// gatherRow writes one row of a slice, from col on: of the rows that reach all over
-// it, with what is around them, together, of the others one by one.
+// gatherRow writes one row of a slice, from col on. Where the rows of all taps reach
+// all over it, with what is around them, they are taken together.
 func (ss *sliceSpace) gatherRow(s *Slices, dst []float64, col, row int32) {
+	n := int32(len(dst))
+	starts := ss.starts
+	taps := 0
+	for i := range ss.heads {
+		h := &ss.heads[i]
+		k := row - h.first
+		if uint32(k) >= uint32(len(h.rows)) {
+			ss.gatherRagged(s, dst, col, row)
+			return
+		}
+		r := &h.rows[k]
+		off := col - h.cols - r.Col
+		if r.Len == 0 || off-h.count+1 < -slicePad || off+n > r.Len+slicePad {
+			ss.gatherRagged(s, dst, col, row)
+			return
+		}
+		from := r.Start + int(off)
+		for q := range int(h.count) {
+			starts[taps] = from - q
+			taps++
+		}
+	}
+	kernel.Combine(dst, s.Mass, starts[:taps], ss.whole)
+}
+
+// gatherRagged is gatherRow for rows of which some do not: those that do together, the
+// others one by one.
+func (ss *sliceSpace) gatherRagged(s *Slices, dst []float64, col, row int32) {
 	starts, weights := ss.starts[:0], ss.weights[:0]
 	ss.partial = ss.partial[:0]
 	n := int32(len(dst))
-	for i := range ss.taps {
-		t := &ss.taps[i]
-		c := &s.At[t.slice]
-		k := row - t.rows - c.Row
-		if k < 0 || k >= c.Count {
+	for i := range ss.heads {
+		h := &ss.heads[i]
+		k := row - h.first
+		if k < 0 || k >= int32(len(h.rows)) {
 			continue
 		}
-		r := &s.Rows[c.First+k]
+		r := h.rows[k]
 		if r.Len == 0 {
 			continue
 		}
-		off := col - t.cols - r.Col
-		if off-t.count+1 >= -slicePad && off+n <= r.Len+slicePad {
+		weight := ss.taps[i].weight[:h.count]
+		off := col - h.cols - r.Col
+		if off-h.count+1 >= -slicePad && off+n <= r.Len+slicePad {
 			from := r.Start + int(off)
-			for q, weight := range t.weight[:t.count] {
+			for q, weight := range weight {
 				starts, weights = append(starts, from-q), append(weights, weight)
 			}
 			continue
 		}
-		for q, weight := range t.weight[:t.count] {
+		for q, weight := range weight {
 			ss.partial = append(ss.partial, partial{r.Start, int32(q) - off, r.Len, weight})
 		}
 	}
-	ss.starts, ss.weights = starts, weights
+	ss.weights = weights
 	if len(starts) > 0 {
 		kernel.Combine(dst, s.Mass, starts, weights)
 	} else {
@@ -309,7 +353,12 @@ func (b *Belief) trimSlices() {
 }
 
 func faint(mass []float64, floor float64) bool {
-	return max(mass[0], mass[1], mass[2], mass[3]) < floor && min(mass[0], mass[1], mass[2], mass[3]) > -floor
+	for _, v := range mass[:sliceLane] {
+		if !(v < floor && v > -floor) {
+			return false
+		}
+	}
+	return true
 }
 
 // wipe makes masses 0 and returns what they were in all.

@@ -97,11 +97,8 @@ func (ss *sliceSpace) columns(s *Slices, i int32) (col, width int32) {
 	for j := range ss.count[1] {
 		if k := ss.index[j*ss.count[0]+i]; k >= 0 {
 			c := &s.At[k]
-			for _, r := range s.Rows[c.First : c.First+c.Count] {
-				if r.Len > 0 {
-					lo, hi = min(lo, r.Col), max(hi, r.Col+r.Len)
-				}
-			}
+			first, end := s.span(c)
+			lo, hi = min(lo, first), max(hi, end)
 		}
 	}
 	return lo, max(0, hi-lo)

@@ -103,14 +103,25 @@ func (s *Slices) box() (lo, hi [2]float64) {
 		oE, oN := s.origin(0, c.East), s.origin(1, c.North)
 		lo[1] = math.Min(lo[1], oN+float64(s.SpacingM[1]*float64(c.Row)))
 		hi[1] = math.Max(hi[1], oN+float64(s.SpacingM[1]*float64(c.Row+c.Count)))
-		for _, r := range s.Rows[c.First : c.First+c.Count] {
-			if r.Len > 0 {
-				lo[0] = math.Min(lo[0], oE+float64(s.SpacingM[0]*float64(r.Col)))
-				hi[0] = math.Max(hi[0], oE+float64(s.SpacingM[0]*float64(r.Col+r.Len)))
-			}
+		if first, end := s.span(c); first < end {
+			lo[0] = math.Min(lo[0], oE+float64(s.SpacingM[0]*float64(first)))
+			hi[0] = math.Max(hi[0], oE+float64(s.SpacingM[0]*float64(end)))
 		}
 	}
 	return lo, hi
+}
+
+// span is the first column of a slice's rows, and the one beyond the last; of no cells the
+// former is the greater.
+func (s *Slices) span(c *Slice) (first, end int32) {
+	first, end = math.MaxInt32, math.MinInt32
+	rows := s.Rows[c.First : c.First+c.Count]
+	for i := range rows {
+		if r := &rows[i]; r.Len > 0 {
+			first, end = min(first, r.Col), max(end, r.Col+r.Len)
+		}
+	}
+	return first, end
 }
 
 func (s *Slices) clone() Slices {

@@ -193,23 +193,39 @@ func (sh *sheet) weigh(ss *sliceSpace, s *Slices, c *Slice) (sum float64) {
 	row, f := sh.rowOf(s, c)
 	shares := sharesOf(f, 0)
 	n := sh.width
+	last := sh.end - sh.firstRow
+	ss.weights = ss.weights[:0]
+	plain := true
 	for i := range shares {
+		plain = plain && shares[i] != 0
 		shares[i] *= s.Scale
 	}
-	for k := range c.Count {
-		r, mass := s.row(c, k)
+	rows := s.Rows[c.First : c.First+c.Count]
+	ss.starts = resize(ss.starts, len(shares))
+	for k := range rows {
+		r := &rows[k]
 		if r.Len == 0 {
 			continue
 		}
-		at := row + 2*k - 1 - sh.firstRow
-		ss.starts, ss.weights = ss.starts[:0], ss.weights[:0]
-		for i, share := range shares {
-			if o := at + int32(i); share != 0 && o >= 0 && o < sh.end-sh.firstRow {
-				ss.starts = append(ss.starts, int(o*n+r.Col-sh.col))
-				ss.weights = append(ss.weights, share)
+		from, to := r.Start, r.Start+int(r.Len)
+		at := row + 2*int32(k) - 1 - sh.firstRow
+		starts, weights := ss.starts[:0], shares[:]
+		if plain && at >= 0 && at+3 < last {
+			starts = ss.starts[:len(shares)]
+			o := int(at*n + r.Col - sh.col)
+			for i := range starts {
+				starts[i] = o + i*int(n)
 			}
+		} else {
+			weights = ss.weights[:0]
+			for i, share := range shares {
+				if o := at + int32(i); share != 0 && o >= 0 && o < last {
+					starts, weights = append(starts, int(o*n+r.Col-sh.col)), append(weights, share)
+				}
+			}
+			ss.weights = weights
 		}
-		sum += kernel.WeighBy(ss.out[r.Start:r.Start+int(r.Len)], mass, sh.lik, ss.starts, ss.weights)
+		sum += kernel.WeighBy(ss.out[from:to], s.Mass[from:to], sh.lik, starts, weights)
 	}
 	return sum
 }

@@ -25,10 +25,18 @@ func Combine(dst, src []float64, at []int, weight []float64) {
 		return
 	}
 	weight = weight[:len(at)]
-	for _, a := range at {
-		_, _ = src[a], src[a+len(dst)-1]
-	}
+	within(src, len(dst), at)
 	combine(dst, src, at, weight)
+}
+
+// within panics unless n values from each place on lie in src.
+func within(src []float64, n int, at []int) {
+	last := uint(len(src[n:]))
+	for _, a := range at {
+		if uint(a) > last {
+			panic("kernel: a stretch that is not in what it is of")
+		}
+	}
 }
 
 // combinePlain is Combine in plain Go, from index i of dst on.
@@ -57,9 +65,7 @@ func WeighBy(dst, mass, src []float64, at []int, weight []float64) float64 {
 		return 0
 	}
 	mass, weight = mass[:len(dst)], weight[:len(at)]
-	for _, a := range at {
-		_, _ = src[a], src[a+len(dst)-1]
-	}
+	within(src, len(dst), at)
 	var sum [16]float64
 	weighBy(dst, mass, src, at, weight, &sum)
 	var four [4]float64

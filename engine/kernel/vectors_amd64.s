@@ -153,9 +153,79 @@ TEXT ·combineAVX2(SB), NOSPLIT, $0-48
 	MOVQ n+32(FP), SI
 	MOVQ taps+40(FP), DI
 
-sixteen:
+by48:
+	CMPQ         SI, $0x30
+	JB           by48Done
+	VBROADCASTSD (BX), Y0
+	MOVQ         (DX), R9
+	VMULPD       (CX)(R9*8), Y0, Y2
+	VMULPD       32(CX)(R9*8), Y0, Y3
+	VMULPD       64(CX)(R9*8), Y0, Y4
+	VMULPD       96(CX)(R9*8), Y0, Y5
+	VMULPD       128(CX)(R9*8), Y0, Y6
+	VMULPD       160(CX)(R9*8), Y0, Y7
+	VMULPD       192(CX)(R9*8), Y0, Y8
+	VMULPD       224(CX)(R9*8), Y0, Y9
+	VMULPD       256(CX)(R9*8), Y0, Y10
+	VMULPD       288(CX)(R9*8), Y0, Y11
+	VMULPD       320(CX)(R9*8), Y0, Y12
+	VMULPD       352(CX)(R9*8), Y0, Y13
+	MOVQ         $0x00000001, R8
+
+by48Tap:
+	CMPQ         R8, DI
+	JGE          by48Out
+	VBROADCASTSD (BX)(R8*8), Y0
+	MOVQ         (DX)(R8*8), R9
+	VMULPD       (CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y2, Y2
+	VMULPD       32(CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y3, Y3
+	VMULPD       64(CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y4, Y4
+	VMULPD       96(CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y5, Y5
+	VMULPD       128(CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y6, Y6
+	VMULPD       160(CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y7, Y7
+	VMULPD       192(CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y8, Y8
+	VMULPD       224(CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y9, Y9
+	VMULPD       256(CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y10, Y10
+	VMULPD       288(CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y11, Y11
+	VMULPD       320(CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y12, Y12
+	VMULPD       352(CX)(R9*8), Y0, Y1
+	VADDPD       Y1, Y13, Y13
+	INCQ         R8
+	JMP          by48Tap
+
+by48Out:
+	VMOVUPD Y2, (AX)
+	VMOVUPD Y3, 32(AX)
+	VMOVUPD Y4, 64(AX)
+	VMOVUPD Y5, 96(AX)
+	VMOVUPD Y6, 128(AX)
+	VMOVUPD Y7, 160(AX)
+	VMOVUPD Y8, 192(AX)
+	VMOVUPD Y9, 224(AX)
+	VMOVUPD Y10, 256(AX)
+	VMOVUPD Y11, 288(AX)
+	VMOVUPD Y12, 320(AX)
+	VMOVUPD Y13, 352(AX)
+	ADDQ    $0x00000180, AX
+	ADDQ    $0x00000180, CX
+	SUBQ    $0x00000030, SI
+	JMP     by48
+
+by48Done:
+by16:
 	CMPQ         SI, $0x10
-	JB           sixteenDone
+	JB           by16Done
 	VBROADCASTSD (BX), Y0
 	MOVQ         (DX), R9
 	VMULPD       (CX)(R9*8), Y0, Y2
@@ -164,9 +234,9 @@ sixteen:
 	VMULPD       96(CX)(R9*8), Y0, Y5
 	MOVQ         $0x00000001, R8
 
-sixteenTap:
+by16Tap:
 	CMPQ         R8, DI
-	JGE          sixteenOut
+	JGE          by16Out
 	VBROADCASTSD (BX)(R8*8), Y0
 	MOVQ         (DX)(R8*8), R9
 	VMULPD       (CX)(R9*8), Y0, Y1
@@ -178,9 +248,9 @@ sixteenTap:
 	VMULPD       96(CX)(R9*8), Y0, Y1
 	VADDPD       Y1, Y5, Y5
 	INCQ         R8
-	JMP          sixteenTap
+	JMP          by16Tap
 
-sixteenOut:
+by16Out:
 	VMOVUPD Y2, (AX)
 	VMOVUPD Y3, 32(AX)
 	VMOVUPD Y4, 64(AX)
@@ -188,35 +258,35 @@ sixteenOut:
 	ADDQ    $0x00000080, AX
 	ADDQ    $0x00000080, CX
 	SUBQ    $0x00000010, SI
-	JMP     sixteen
+	JMP     by16
 
-sixteenDone:
-four:
+by16Done:
+by4:
 	CMPQ         SI, $0x04
-	JB           fourDone
+	JB           by4Done
 	VBROADCASTSD (BX), Y0
 	MOVQ         (DX), R9
 	VMULPD       (CX)(R9*8), Y0, Y1
 	MOVQ         $0x00000001, R8
 
-fourTap:
+by4Tap:
 	CMPQ         R8, DI
-	JGE          fourOut
+	JGE          by4Out
 	VBROADCASTSD (BX)(R8*8), Y0
 	MOVQ         (DX)(R8*8), R9
 	VMULPD       (CX)(R9*8), Y0, Y0
 	VADDPD       Y0, Y1, Y1
 	INCQ         R8
-	JMP          fourTap
+	JMP          by4Tap
 
-fourOut:
+by4Out:
 	VMOVUPD Y1, (AX)
 	ADDQ    $0x00000020, AX
 	ADDQ    $0x00000020, CX
 	SUBQ    $0x00000004, SI
-	JMP     four
+	JMP     by4
 
-fourDone:
+by4Done:
 	VZEROUPPER
 	RET
 
@@ -237,9 +307,88 @@ TEXT ·weighByAVX2(SB), NOSPLIT, $0-64
 	MOVQ    n+48(FP), R8
 	MOVQ    taps+56(FP), R9
 
-sixteen:
+by32:
+	CMPQ         R8, $0x20
+	JB           by32Done
+	VBROADCASTSD (DI), Y5
+	MOVQ         (SI), R11
+	VMULPD       (BX)(R11*8), Y5, Y7
+	VMULPD       32(BX)(R11*8), Y5, Y8
+	VMULPD       64(BX)(R11*8), Y5, Y9
+	VMULPD       96(BX)(R11*8), Y5, Y10
+	VMULPD       128(BX)(R11*8), Y5, Y11
+	VMULPD       160(BX)(R11*8), Y5, Y12
+	VMULPD       192(BX)(R11*8), Y5, Y13
+	VMULPD       224(BX)(R11*8), Y5, Y14
+	MOVQ         $0x00000001, R10
+
+by32Tap:
+	CMPQ         R10, R9
+	JGE          by32Out
+	VBROADCASTSD (DI)(R10*8), Y5
+	MOVQ         (SI)(R10*8), R11
+	VMULPD       (BX)(R11*8), Y5, Y6
+	VADDPD       Y6, Y7, Y7
+	VMULPD       32(BX)(R11*8), Y5, Y6
+	VADDPD       Y6, Y8, Y8
+	VMULPD       64(BX)(R11*8), Y5, Y6
+	VADDPD       Y6, Y9, Y9
+	VMULPD       96(BX)(R11*8), Y5, Y6
+	VADDPD       Y6, Y10, Y10
+	VMULPD       128(BX)(R11*8), Y5, Y6
+	VADDPD       Y6, Y11, Y11
+	VMULPD       160(BX)(R11*8), Y5, Y6
+	VADDPD       Y6, Y12, Y12
+	VMULPD       192(BX)(R11*8), Y5, Y6
+	VADDPD       Y6, Y13, Y13
+	VMULPD       224(BX)(R11*8), Y5, Y6
+	VADDPD       Y6, Y14, Y14
+	INCQ         R10
+	JMP          by32Tap
+
+by32Out:
+	VMULPD  (CX), Y7, Y7
+	VMAXPD  Y0, Y7, Y7
+	VMOVUPD Y7, (AX)
+	VADDPD  Y7, Y1, Y1
+	VMULPD  32(CX), Y8, Y8
+	VMAXPD  Y0, Y8, Y8
+	VMOVUPD Y8, 32(AX)
+	VADDPD  Y8, Y2, Y2
+	VMULPD  64(CX), Y9, Y9
+	VMAXPD  Y0, Y9, Y9
+	VMOVUPD Y9, 64(AX)
+	VADDPD  Y9, Y3, Y3
+	VMULPD  96(CX), Y10, Y10
+	VMAXPD  Y0, Y10, Y10
+	VMOVUPD Y10, 96(AX)
+	VADDPD  Y10, Y4, Y4
+	VMULPD  128(CX), Y11, Y11
+	VMAXPD  Y0, Y11, Y11
+	VMOVUPD Y11, 128(AX)
+	VADDPD  Y11, Y1, Y1
+	VMULPD  160(CX), Y12, Y12
+	VMAXPD  Y0, Y12, Y12
+	VMOVUPD Y12, 160(AX)
+	VADDPD  Y12, Y2, Y2
+	VMULPD  192(CX), Y13, Y13
+	VMAXPD  Y0, Y13, Y13
+	VMOVUPD Y13, 192(AX)
+	VADDPD  Y13, Y3, Y3
+	VMULPD  224(CX), Y14, Y14
+	VMAXPD  Y0, Y14, Y14
+	VMOVUPD Y14, 224(AX)
+	VADDPD  Y14, Y4, Y4
+	ADDQ    $0x00000100, AX
+	ADDQ    $0x00000100, CX
+	ADDQ    $0x00000100, BX
+	SUBQ    $0x00000020, R8
+	JMP     by32
+
+by32Done:
+by16:
 	CMPQ         R8, $0x10
-	JB           sixteenDone
+	JB           by16Done
 	VBROADCASTSD (DI), Y5
 	MOVQ         (SI), R11
 	VMULPD       (BX)(R11*8), Y5, Y7
@@ -248,9 +397,9 @@ sixteen:
 	VMULPD       96(BX)(R11*8), Y5, Y10
 	MOVQ         $0x00000001, R10
 
-sixteenTap:
+by16Tap:
 	CMPQ         R10, R9
-	JGE          sixteenOut
+	JGE          by16Out
 	VBROADCASTSD (DI)(R10*8), Y5
 	MOVQ         (SI)(R10*8), R11
 	VMULPD       (BX)(R11*8), Y5, Y6
@@ -262,9 +411,9 @@ sixteenTap:
 	VMULPD       96(BX)(R11*8), Y5, Y6
 	VADDPD       Y6, Y10, Y10
 	INCQ         R10
-	JMP          sixteenTap
+	JMP          by16Tap
 
-sixteenOut:
+by16Out:
 	VMULPD  (CX), Y7, Y7
 	VMAXPD  Y0, Y7, Y7
 	VMOVUPD Y7, (AX)
@@ -285,28 +434,28 @@ sixteenOut:
 	ADDQ    $0x00000080, CX
 	ADDQ    $0x00000080, BX
 	SUBQ    $0x00000010, R8
-	JMP     sixteen
+	JMP     by16
 
-sixteenDone:
-four:
+by16Done:
+by4:
 	CMPQ         R8, $0x04
-	JB           fourDone
+	JB           by4Done
 	VBROADCASTSD (DI), Y5
 	MOVQ         (SI), R11
 	VMULPD       (BX)(R11*8), Y5, Y6
 	MOVQ         $0x00000001, R10
 
-fourTap:
+by4Tap:
 	CMPQ         R10, R9
-	JGE          fourOut
+	JGE          by4Out
 	VBROADCASTSD (DI)(R10*8), Y5
 	MOVQ         (SI)(R10*8), R11
 	VMULPD       (BX)(R11*8), Y5, Y5
 	VADDPD       Y5, Y6, Y6
 	INCQ         R10
-	JMP          fourTap
+	JMP          by4Tap
 
-fourOut:
+by4Out:
 	VMULPD  (CX), Y6, Y6
 	VMAXPD  Y0, Y6, Y6
 	VMOVUPD Y6, (AX)
@@ -315,9 +464,9 @@ fourOut:
 	ADDQ    $0x00000020, CX
 	ADDQ    $0x00000020, BX
 	SUBQ    $0x00000004, R8
-	JMP     four
+	JMP     by4
 
-fourDone:
+by4Done:
 	VMOVUPD Y1, (DX)
 	VMOVUPD Y2, 32(DX)
 	VMOVUPD Y3, 64(DX)

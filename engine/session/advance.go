@@ -140,7 +140,7 @@ func (s *Session) begin() {
 		}
 	}
 	if len(s.snaps) == 0 {
-		s.snaps = append(s.snaps, snapshot{time: t - 1, state: s.state.clone()})
+		s.snaps = append(s.snaps, s.unbegun(t-1))
 	}
 	s.snaps[0].time = t - 1 // an earlier one may have come
 	s.state.begun = true

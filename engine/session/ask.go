@@ -15,7 +15,17 @@ import (
 func (s *Session) summarise() *summary.Posterior {
 	st := &s.state
 	p := &summary.Posterior{}
-	if err := s.read(&s.desk().sum, p); err != nil {
+	// The posterior of a huge belief comes seldom, and what it is made with is as large
+	// as the belief: it is not held meanwhile, nor what moves the belief while it is made.
+	huge := s.lines != nil && st.belief.Cells() > s.hugeSize
+	if huge {
+		s.desk().work.Release()
+	}
+	in := s.input()
+	if huge {
+		s.desk().work.Release()
+	}
+	if err := s.desk().sum.Summarize(p, &in); err != nil {
 		panic(fmt.Sprintf("session: %v", err)) // a belief is never empty
 	}
 	p.GapS = st.gapS
@@ -23,6 +33,9 @@ func (s *Session) summarise() *summary.Posterior {
 	s.stand(p.MeanFrame, p.Heading)
 	st.evidence, st.gapS, st.posteriorAt, st.unread = nil, 0, st.time, false
 	s.fresh = true
+	if huge {
+		s.clearDesk()
+	}
 	return p
 }
 

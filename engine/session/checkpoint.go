@@ -114,6 +114,9 @@ func (s *Session) code(c *exact.Coder, found *[]recipe) {
 	snaps := s.snaps
 	if !c.Reading() {
 		snaps = s.written()
+		if snaps = slices.Clone(snaps); len(snaps) > 0 && snaps[0].seeded() {
+			snaps[0].state = s.stateOf(&snaps[0])
+		}
 	}
 	exact.Slice(c, &snaps, 8, func(n *snapshot) {
 		c.Value(&n.time)

@@ -61,10 +61,7 @@ func (s *Session) Rest() {
 		return
 	}
 	if s.desks == nil {
-		d.work.Release()
-		*d = desk{work: d.work} // which may record
-		d.sum.Set(s.shown())
-		s.fresh = false
+		s.clearDesk()
 		return
 	}
 	s.own = nil
@@ -72,4 +69,13 @@ func (s *Session) Rest() {
 	if d.widest <= deskCells {
 		s.desks.pool.Put(d)
 	}
+}
+
+// clearDesk gives back the memory on the desk, which stays the session's.
+func (s *Session) clearDesk() {
+	d := s.own
+	d.work.Release()
+	*d = desk{work: d.work} // which may record
+	d.sum.Set(s.shown())
+	s.fresh = false
 }

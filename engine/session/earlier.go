@@ -77,7 +77,7 @@ func (s *Session) Earlier(agoS float64) (*Earlier, error) {
 	if snap == nil {
 		snap = s.before(last)
 	}
-	e.from.state = snap.clone()
+	e.from.state = s.stateOf(snap)
 	if snap.begun {
 		e.from.next = sort.Search(len(events), func(i int) bool { return events[i].Time > snap.time })
 		return e, nil

@@ -105,7 +105,7 @@ func (s *Session) rewind(from sensor.Time) {
 	snap := &s.snaps[n-1]
 	clear(s.snaps[n:]) // they hold beliefs
 	s.snaps = s.snaps[:n]
-	s.state = snap.clone()
+	s.state = s.stateOf(snap)
 	s.fresh = false
 	for s.log.next > 0 && (!snap.begun || s.log.events[s.log.next-1].Time > snap.time) {
 		s.log.next--

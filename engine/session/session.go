@@ -191,6 +191,9 @@ type Session struct {
 	watch     func(Change)
 	finals    func(*summary.Posterior)
 	settled   func([]sensor.Event)
+	// seed makes the belief with which the session began again, if that is huge: the
+	// snapshot from before does without (snapshot.seeded).
+	seed func() (*filter.Belief, error)
 }
 
 // New starts a session. An error says what is wrong with the configuration.
@@ -199,7 +202,10 @@ func New(c Config) (*Session, error) {
 	if err != nil {
 		return nil, err
 	}
-	b, err := filter.Seed(c.Space, c.Start.prior(c.Space.Frame()), s.suite.Quantities(s.dim), s.maxCells)
+	seed := func() (*filter.Belief, error) {
+		return filter.Seed(c.Space, c.Start.prior(c.Space.Frame()), s.suite.Quantities(s.dim), s.maxCells)
+	}
+	b, err := seed()
 	if errors.Is(err, filter.ErrNowhere) {
 		return nil, errors.New("start: it does not touch the map: check its coordinates (longitude first) and the map's extent")
 	}
@@ -207,6 +213,9 @@ func New(c Config) (*Session, error) {
 		return nil, err
 	}
 	s.state.belief = b
+	if s.lines != nil && b.Cells() > s.hugeSize {
+		s.seed = seed
+	}
 	s.state.monitor = monitor.New(s.suite.Vehicle.FalseAlarmH * 3600)
 	s.setRates()
 	return s, nil

@@ -1,6 +1,7 @@
 package session
 
 import (
+	"fmt"
 	"slices"
 
 	"leadline/engine/filter"
@@ -99,6 +100,37 @@ type snapshot struct {
 	// checkpoint leaves out what can be computed again from an earlier one. It
 	// keeps the later ones at the times that they would have had.
 	hollow bool
+}
+
+// unbegun is the snapshot from before the session has begun.
+func (s *Session) unbegun(at sensor.Time) snapshot {
+	if s.seed == nil {
+		return snapshot{time: at, state: s.state.clone()}
+	}
+	st := s.state
+	st.belief = new(filter.Belief)
+	n := snapshot{time: at, state: st.clone()}
+	n.belief = nil
+	return n
+}
+
+// seeded says that the belief of a snapshot is the one with which the session began.
+func (s *snapshot) seeded() bool { return s.belief == nil && !s.hollow }
+
+// stateOf copies the state of a snapshot that is not hollow.
+func (s *Session) stateOf(n *snapshot) state {
+	if !n.seeded() {
+		return n.clone()
+	}
+	b, err := s.seed()
+	if err != nil {
+		panic(fmt.Sprintf("session: %v", err)) // it has been made before
+	}
+	st := n.state
+	st.belief = new(filter.Belief)
+	st = st.clone()
+	st.belief = b
+	return st
 }
 
 // precedes reports whether what happens from a time on can be computed again

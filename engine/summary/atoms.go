@@ -27,11 +27,14 @@ type disc struct {
 }
 
 type needle struct {
-	mass, d float64 // of its middle
-	w2, v   float64 // squared distance of its line from the centre; |place along it|
-	is      float64
-	reach   float64
+	mass  float64
+	w2, v float64 // squared distance of its line from the centre; |place along it|
+	is    float64
+	reach float64
 }
+
+// distance is that of its middle.
+func (a *needle) distance() float64 { return math.Sqrt(a.w2 + float64(a.v*a.v)) }
 
 // gaussHermite are nodes and weights for the standard normal distribution
 // (probabilists' form), the positive half; Abramowitz & Stegun table 25.10 with
@@ -139,7 +142,7 @@ func (s *Summarizer) take(mass float64, p geo.Point, c Cov, meanSquare float64) 
 func (s *Summarizer) needle(mass, w, v, is, sigma float64) {
 	w2 := w * w
 	s.needles = append(s.needles, needle{
-		mass, math.Sqrt(w2 + float64(v*v)), w2, math.Abs(v), is, tailEnd * sigma,
+		mass, w2, math.Abs(v), is, tailEnd * sigma,
 	})
 }
 

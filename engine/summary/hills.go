@@ -142,7 +142,13 @@ func (h *hills) smooth() {
 // absorbed unless the saddle is below prominence times their height.
 func (h *hills) divide(prominence float64) {
 	n := len(h.mass)
-	h.order = resize(h.order, n)[:0]
+	used := 0
+	for _, high := range h.high {
+		if high > 0 {
+			used++
+		}
+	}
+	h.order = resize(h.order, used)[:0]
 	h.peak, h.visit = resize(h.peak, n), resize(h.visit, n)
 	for i, high := range h.high {
 		h.peak[i] = -1

@@ -46,6 +46,9 @@ func (s *Summarizer) findModes(dst *Posterior, in *Input) (best float64, heavy i
 	h.pour(s.east, s.north, s.mass)
 	h.smooth()
 	h.divide(prominence)
+	if len(s.mass) > wideEntries {
+		h.order, h.spare, h.visit = nil, nil, nil
+	}
 	s.gather()
 
 	dst.ModeCount, dst.ModeRest = len(s.modes), 0

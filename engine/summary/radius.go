@@ -44,7 +44,7 @@ func ringFrom(i int) float64 {
 func (s *Summarizer) takeApart(centre geo.Point, meanSquare float64) {
 	s.discs, s.needles, s.dots = s.discs[:0], s.needles[:0], false
 	if s.dim == 1 && len(s.mass) > fewPieces {
-		s.needles = slices.Grow(s.needles, len(s.mass)) // a wide belief has mostly one each
+		s.needles = slices.Grow(s.needles, 2*len(s.mass)) // a wide belief has mostly one or two each
 	}
 	if s.square != (Cov{}) {
 		s.discs = slices.Grow(s.discs, len(s.mass)) // and a lattice just one
@@ -68,7 +68,7 @@ func (s *Summarizer) takeApart(centre geo.Point, meanSquare float64) {
 	}
 	for i := range s.needles {
 		a := &s.needles[i]
-		s.ringMass[ringOf(a.d)] += a.mass
+		s.ringMass[ringOf(a.distance())] += a.mass
 		s.maxReach = math.Max(s.maxReach, a.reach)
 	}
 }
@@ -103,9 +103,9 @@ func (s *Summarizer) bracket(target float64) (low, high float64) {
 	}
 	for j := range s.needles {
 		a := &s.needles[j]
-		switch {
-		case a.d+a.reach < low:
-		case a.d-a.reach > high:
+		switch d := a.distance(); {
+		case d+a.reach < low:
+		case d-a.reach > high:
 			s.beyond += a.mass
 		default:
 			s.nearNeedles = append(s.nearNeedles, *a)

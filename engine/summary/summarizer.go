@@ -111,6 +111,9 @@ func (s *Summarizer) Summarize(dst *Posterior, in *Input) error {
 	s.mostProbable(dst, in)
 	s.listEdges(dst, in)
 	best, heavy := s.findModes(dst, in)
+	if len(s.mass) > wideEntries { // not while radii are found, too
+		s.hills, s.modeOf, s.rank = hills{}, nil, nil
+	}
 
 	rms := math.Sqrt(s.spread.EE + s.spread.NN)
 	s.takeApart(mean, s.spread.EE+s.spread.NN)
@@ -222,6 +225,10 @@ func (s *Summarizer) load(in *Input) (mean geo.Point, err error) {
 	}
 	return mean, nil
 }
+
+// wideEntries is from where on memory is given back that the rest of a summary does
+// without: it is some dozen megabytes then.
+const wideEntries = 1 << 16
 
 const sqrt12 = 3.4641016151377544
 

@@ -3,6 +3,8 @@
 package main
 
 import (
+	"fmt"
+
 	. "github.com/mmcloughlin/avo/build"
 	. "github.com/mmcloughlin/avo/operand"
 	. "github.com/mmcloughlin/avo/reg"
@@ -97,8 +99,8 @@ func addScaled() {
 	RET()
 }
 
-// combine is kernel.Combine for n values, a multiple of 4: sixteen at a time, then
-// four.
+// combine is kernel.Combine for n values, a multiple of 4: 48 at a time, then sixteen,
+// then four.
 func combine() {
 	TEXT("combineAVX2", NOSPLIT, "func(dst, src *float64, at *int, weight *float64, n, taps int)")
 	Pragma("noescape")
@@ -109,7 +111,7 @@ func combine() {
 			VMOVUPD(sums[i], Mem{Base: dst, Disp: 32 * i})
 		}
 		ADDQ(U32(32*len(sums)), dst)
-	})
+	}, 12, 4, 1)
 	VZEROUPPER()
 	RET()
 }
@@ -132,11 +134,11 @@ func weighBy() {
 			VMULPD(Mem{Base: mass, Disp: 32 * i}, sums[i], sums[i])
 			VMAXPD(zero, sums[i], sums[i]) // zero where it is not above that
 			VMOVUPD(sums[i], Mem{Base: dst, Disp: 32 * i})
-			VADDPD(sums[i], all[i], all[i])
+			VADDPD(sums[i], all[i%4], all[i%4])
 		}
 		ADDQ(U32(32*len(sums)), dst)
 		ADDQ(U32(32*len(sums)), mass)
-	})
+	}, 8, 4, 1)
 	for i := range all {
 		VMOVUPD(all[i], Mem{Base: sum, Disp: 32 * i})
 	}
@@ -144,13 +146,14 @@ func weighBy() {
 	RET()
 }
 
-// combined has use take the weighted sums of stretches of src, sixteen values at a time,
-// then four.
-func combined(use func(sums []VecVirtual)) {
+// combined has use take the weighted sums of stretches of src, as many vectors at a
+// time as there are left of the sizes.
+func combined(use func(sums []VecVirtual), sizes ...int) {
 	src, at, weight := Load(Param("src"), GP64()), Load(Param("at"), GP64()), Load(Param("weight"), GP64())
 	n, taps := Load(Param("n"), GP64()), Load(Param("taps"), GP64())
 	k, from := GP64(), GP64()
-	block := func(name string, vectors int) {
+	for _, vectors := range sizes {
+		name := fmt.Sprintf("by%d", 4*vectors)
 		Label(name)
 		CMPQ(n, Imm(uint64(4*vectors)))
 		JB(LabelRef(name + "Done"))
@@ -181,6 +184,4 @@ func combined(use func(sums []VecVirtual)) {
 		JMP(LabelRef(name))
 		Label(name + "Done")
 	}
-	block("sixteen", 4)
-	block("four", 1)
 }
