@@ -1,17 +1,17 @@
 package journal
 
 import (
+	"bytes"
 	"context"
 	"errors"
 	"fmt"
 	"time"
 
-	"github.com/nats-io/nats.go"
 	"github.com/nats-io/nats.go/jetstream"
 )
 
 // commit publishes one pack with what is given; nil says that it is durable,
-// another error that it is not in and never will be. While nobody knows, it
+// another error that what is given is not in and never will be. While nobody knows, it
 // waits: at most for the end of ctx.
 func (p *partition) commit(ctx context.Context, batch []waiting) error {
 	p.mu.Lock()
@@ -37,9 +37,12 @@ func (p *partition) commit(ctx context.Context, batch []waiting) error {
 		next.records = append(next.records, w.part)
 	}
 	p.buf = next.appendTo(p.buf[:0])
-	sequence, err := p.publish(ctx, &next)
-	if err != nil {
-		return err
+	sequence, in, refusal := p.publish(ctx, &next)
+	if !in {
+		return refusal
+	}
+	if refusal != nil { // an empty one is in
+		clear(numbers)
 	}
 	for l, n := range numbers {
 		l.number = n
@@ -55,7 +58,7 @@ func (p *partition) commit(ctx context.Context, batch []waiting) error {
 	next.lines, next.first = max(p.pack.lines, next.lines), max(p.pack.first, next.first)
 	p.pack, p.last = next, sequence
 	p.note(next.number, sequence, time.Now())
-	return nil
+	return refusal
 }
 
 // note keeps where a pack is; p.mu is held.
@@ -72,35 +75,70 @@ func (p *partition) note(number, sequence uint64, at time.Time) {
 const tries = 8
 
 // publish gives the pack in p.buf to the broker, and finds out whether it is in
-// where the broker does not say.
-func (p *partition) publish(ctx context.Context, next *pack) (sequence uint64, err error) {
+// where the broker does not say. in says that a pack is, with or without an error.
+func (p *partition) publish(ctx context.Context, next *pack) (sequence uint64, in bool, err error) {
+	unknown := false // some try may come through yet
 	for try := 1; ; try++ {
-		b := p.j.broker.Load()
-		call, cancel := b.asked(ctx)
-		ack, err := b.js.PublishMsg(call, &nats.Msg{Subject: p.subject, Data: p.buf, Header: nats.Header{writerHeader: {p.j.writer}}},
-			jetstream.WithExpectLastSequencePerSubject(p.last), jetstream.WithRetryAttempts(0))
-		cancel()
+		sequence, err := p.j.log.Publish(ctx, p.index, p.buf, p.j.writer, p.last)
 		if err == nil {
-			return ack.Sequence, nil
+			return sequence, true, nil
 		}
 		if ctx.Err() != nil {
-			return 0, ErrClosed
+			return 0, false, ErrClosed
 		}
-		in, settledErr := p.settle(ctx, next, err)
+		var api *jetstream.APIError
+		unknown = unknown || !errors.As(err, &api)
+		last, settledErr := p.settle(ctx, next, err)
 		switch {
 		case settledErr != nil:
-			return 0, settledErr
-		case in > 0:
-			return in, nil
+			return 0, false, settledErr
+		case last.Sequence > 0 && !bytes.Equal(last.Data, p.buf):
+			return 0, false, fmt.Errorf("%w: pack %d of partition %d is in, and is another one", ErrTaken, next.number, p.index+1)
+		case last.Sequence > 0:
+			return last.Sequence, true, nil
 		}
-		if full := p.j.full(0); full != nil {
-			return 0, full
+		refusal := p.j.full(0)
+		if refusal == nil && noRoom(err) {
+			refusal = fmt.Errorf("%w: %w", ErrFull, err)
 		}
-		if noRoom(err) {
-			return 0, fmt.Errorf("%w: %w", ErrFull, err)
+		if refusal == nil && try == tries {
+			refusal = fmt.Errorf("%w: %w", ErrDown, err)
 		}
-		if try == tries {
-			return 0, fmt.Errorf("%w: %w", ErrDown, err)
+		switch {
+		case refusal != nil && unknown:
+			return p.replace(ctx, next, refusal)
+		case refusal != nil:
+			return 0, false, refusal
+		}
+	}
+}
+
+// replace publishes an empty pack in the place of one that is given up and may be on
+// its way still: with that it can come no more. If it has come it is in.
+func (p *partition) replace(ctx context.Context, next *pack, refusal error) (sequence uint64, in bool, err error) {
+	empty := *next
+	empty.records = nil
+	data := empty.appendTo(nil)
+	for wait := shortestWait; ; wait = min(2*wait, time.Second) {
+		sequence, err := p.j.log.Publish(ctx, p.index, data, p.j.writer, p.last)
+		if err == nil {
+			return sequence, true, refusal
+		}
+		if ctx.Err() != nil {
+			return 0, false, ErrClosed
+		}
+		last, settledErr := p.settle(ctx, next, err)
+		switch {
+		case settledErr != nil:
+			return 0, false, settledErr
+		case last.Sequence > 0 && bytes.Equal(last.Data, p.buf):
+			return last.Sequence, true, nil
+		case last.Sequence > 0:
+			return last.Sequence, true, refusal
+		}
+		p.fallDown(err)
+		if p.j.log.Wait(ctx, wait); ctx.Err() != nil {
+			return 0, false, ErrClosed
 		}
 	}
 }
@@ -126,32 +164,31 @@ const shortestWait = 20 * time.Millisecond
 // partition over at once would give their packs the same numbers.
 const writerHeader = "Leadline-Writer"
 
-// settle finds out whether a pack is in: with its sequence if it is, 0 if it is
-// not. It asks until the broker answers.
-func (p *partition) settle(ctx context.Context, next *pack, why error) (sequence uint64, err error) {
+// settle finds out whether a pack of that number is in: which, if one is; its
+// sequence is 0 if none is. It asks until the broker answers.
+func (p *partition) settle(ctx context.Context, next *pack, why error) (in Message, err error) {
 	var api *jetstream.APIError
 	outOfDate := errors.As(why, &api) && api.ErrorCode == jetstream.JSErrCodeStreamWrongLastSequence
 	for wait := shortestWait; ; wait = min(2*wait, time.Second) {
-		last, number, epoch, writer, err := p.lastAtBroker(ctx)
+		m, last, err := p.lastAtBroker(ctx)
 		switch {
-		case err == nil && last == p.last && outOfDate && wait < time.Second:
+		case err == nil && m.Sequence == p.last && outOfDate && wait < time.Second:
 			// It has refused the pack since something is in, and whoever answered may not
 			// know of it yet: of several brokers one is behind.
-		case err == nil && last == p.last:
-			return 0, nil
-		case err == nil && number == next.number && epoch == next.epoch && writer == p.j.writer:
-			return last, nil
-		case err == nil && last > p.last:
-			return 0, fmt.Errorf("%w: pack %d of epoch %d is in partition %d, and this one's is %d of %d", ErrTaken, number, epoch, p.index+1, next.number, next.epoch)
+		case err == nil && m.Sequence == p.last:
+			return Message{}, nil
+		case err == nil && last.number == next.number && last.epoch == next.epoch && m.Writer == p.j.writer:
+			return m, nil
+		case err == nil && m.Sequence > p.last:
+			return Message{}, fmt.Errorf("%w: pack %d of epoch %d is in partition %d, and this one's is %d of %d", ErrTaken, last.number, last.epoch, p.index+1, next.number, next.epoch)
+		case err == nil && wait < time.Second: // likewise, and further behind
 		case err == nil:
-			return 0, fmt.Errorf("%w: the last pack of partition %d is gone from the broker", ErrTaken, p.index+1)
+			return Message{}, fmt.Errorf("%w: the last pack of partition %d is gone from the broker", ErrTaken, p.index+1)
 		}
 		p.fallDown(why)
 		p.j.revive()
-		select {
-		case <-ctx.Done():
-			return 0, ErrClosed
-		case <-time.After(wait):
+		if p.j.log.Wait(ctx, wait); ctx.Err() != nil {
+			return Message{}, ErrClosed
 		}
 	}
 }
@@ -167,26 +204,16 @@ func (p *partition) fallDown(why error) {
 	}
 }
 
-// lastAtBroker is the last pack of the partition; 0 if there is none.
-func (p *partition) lastAtBroker(ctx context.Context) (sequence, number, epoch uint64, writer string, err error) {
-	ctx, cancel := p.j.broker.Load().asked(ctx)
-	defer cancel()
-	st, err := p.j.stream(ctx)
-	if err != nil {
-		return 0, 0, 0, "", err
+// lastAtBroker is the last pack of the partition, and its message, whose sequence is
+// 0 if there is none.
+func (p *partition) lastAtBroker(ctx context.Context) (m Message, last pack, err error) {
+	if m, err = p.j.log.Last(ctx, p.index); err != nil || m.Sequence == 0 {
+		return m, last, err
 	}
-	m, err := st.GetLastMsgForSubject(ctx, p.subject)
-	if errors.Is(err, jetstream.ErrMsgNotFound) {
-		return 0, 0, 0, "", nil
-	}
-	if err != nil {
-		return 0, 0, 0, "", err
-	}
-	var last pack
 	if err := last.read(m.Data); err != nil {
-		return 0, 0, 0, "", fmt.Errorf("pack at sequence %d: %w", m.Sequence, err)
+		return m, last, fmt.Errorf("pack at sequence %d: %w", m.Sequence, err)
 	}
-	return m.Sequence, last.number, last.epoch, m.Header.Get(writerHeader), nil
+	return m, last, nil
 }
 
 // revive starts a broker within this process again that has given up, once
@@ -194,7 +221,7 @@ func (p *partition) lastAtBroker(ctx context.Context) (sequence, number, epoch u
 func (j *Journal) revive() {
 	j.reopen.Lock()
 	defer j.reopen.Unlock()
-	if j.broker.Load().up() || j.o.Dir == "" || j.full(1) != nil || j.ended.Err() != nil {
+	if j.rehearsed != nil || j.broker.Load().up() || j.o.Dir == "" || j.full(1) != nil || j.ended.Err() != nil {
 		return
 	}
 	j.broker.Load().close()

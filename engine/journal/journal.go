@@ -36,6 +36,9 @@ type Journal struct {
 	marks *marks
 	// writer tells this journal's packs from those of others at the broker.
 	writer string
+	log    Log
+	// rehearsed is the log where this is one; else nil.
+	rehearsed Readable
 
 	mu    sync.RWMutex
 	parts []*partition // of a shared journal those that are not its own are nil
@@ -65,6 +68,7 @@ func Open(ctx context.Context, o Options, take func(Record) error) (*Journal, *F
 	}
 	o = o.withDefaults()
 	j := &Journal{o: o, writer: rand.Text()}
+	j.log = atBroker{j}
 	j.ended, j.end = context.WithCancel(context.Background())
 	fail := func(err error) (*Journal, *Found, error) {
 		j.end()
@@ -146,7 +150,9 @@ func (j *Journal) takeAll(ctx context.Context, st jetstream.Stream, info *jetstr
 	defer j.mu.Unlock()
 	for _, p := range ps {
 		j.parts[p.index] = p
-		j.tasks.Go(p.run)
+		if j.rehearsed == nil {
+			j.tasks.Go(p.run)
+		}
 	}
 	return found, nil
 }
@@ -158,12 +164,17 @@ func (j *Journal) Take(ctx context.Context, index int, take func(Record) error) 
 	if j.part(index) != nil {
 		panic("journal: a partition is taken twice")
 	}
-	st, err := j.stream(ctx)
-	if err != nil {
-		return nil, fmt.Errorf("%w: %w", ErrDown, err)
+	var st jetstream.Stream
+	info := new(jetstream.StreamInfo)
+	if j.rehearsed == nil {
+		var err error
+		if st, err = j.stream(ctx); err != nil {
+			return nil, fmt.Errorf("%w: %w", ErrDown, err)
+		}
+		info = st.CachedInfo()
 	}
 	p := newPartition(j, index)
-	found, err := j.takeAll(ctx, st, st.CachedInfo(), []*partition{p}, take)
+	found, err := j.takeAll(ctx, st, info, []*partition{p}, take)
 	if err != nil {
 		p.cancel()
 	}
@@ -181,6 +192,9 @@ func (j *Journal) Give(ctx context.Context, index int) {
 		return
 	}
 	p.close()
+	if j.rehearsed != nil {
+		p.giveRehearsed(ctx)
+	}
 	select {
 	case <-p.idle:
 	case <-ctx.Done():

@@ -36,6 +36,8 @@ type partition struct {
 
 	// Of the committer.
 	last uint64 // the broker's sequence of the last pack
+	lost bool   // another journal writes it
+	busy bool   // of a rehearsal: a step is under way
 	buf  []byte
 }
 
@@ -47,6 +49,8 @@ type waiting struct {
 	urgent bool
 	first  uint64          // pack of the record's first part, once that is in
 	done   func(At, error) // of the last part
+	// refused is why it is not to be committed, where that was known when it came.
+	refused error
 }
 
 // indexed is where a pack is at the broker: of one in indexEvery, and oftener
@@ -81,15 +85,18 @@ func (p *partition) append(l *Line, kind byte, data []byte, urgent bool, done fu
 	case err == nil && p.bytes+len(data) > maxQueued && p.bytes > 0:
 		err = fmt.Errorf("%w: %d MiB wait to be committed", ErrDown, p.bytes>>20)
 	}
-	if err != nil {
+	switch {
+	case err == nil:
+		p.push(l, kind, data, urgent, done)
+	case p.taken > 0 || len(p.queue) > 0: // what was before it is told of first
+		l.broken = err
+		p.queue = append(p.queue, waiting{line: l, done: done, refused: err})
+	default:
 		l.broken = err
 		p.mu.Unlock()
 		p.j.refused.Add(1)
 		done(At{}, err)
 		return
-	}
-	if l != nil {
-		p.push(l, kind, data, urgent, done)
 	}
 	p.mu.Unlock()
 	p.poke()
@@ -184,8 +191,8 @@ func (p *partition) take() (batch []waiting, closed bool) {
 	return batch, p.closed
 }
 
-// serve commits a batch and tells who waits for it. What there is no room for is
-// left out, with all else of its lines.
+// serve commits a batch and tells who waits for it, of each line in order. What
+// there is no room for is left out, with all else of its lines.
 func (p *partition) serve(batch []waiting) {
 	refusal := p.j.full(0)
 	var urgent error
@@ -200,6 +207,9 @@ func (p *partition) serve(batch []waiting) {
 		if w.urgent {
 			err = urgent
 		}
+		if w.refused != nil {
+			err = w.refused
+		}
 		if w.line != nil && broken[w.line] != nil {
 			err = broken[w.line]
 		}
@@ -212,37 +222,33 @@ func (p *partition) serve(batch []waiting) {
 		}
 		kept = append(kept, w)
 	}
-	if len(left) > 0 {
-		p.refuse(left, broken, refusal)
+	var err error
+	if len(kept) > 0 {
+		err = p.commit(p.ended, kept)
 	}
-	if len(kept) == 0 {
-		p.settled(nil, 0)
-		return
-	}
-	if err := p.commit(p.ended, kept); err != nil {
-		if lost := p.j.o.Lost; lost != nil && errors.Is(err, ErrTaken) {
-			go lost(p.index)
+	if err != nil {
+		if errors.Is(err, ErrTaken) {
+			p.lost = true
+			if lost := p.j.o.Lost; lost != nil {
+				go lost(p.index)
+			}
 		}
-		broken := map[*Line]error{}
 		for _, w := range kept {
 			if w.line != nil {
 				broken[w.line] = err
 			}
 		}
-		p.settled(err, 0)
-		p.refuse(kept, broken, err)
-		return
+		left, kept, refusal = append(kept, left...), nil, err
 	}
-	p.settled(nil, len(kept))
 	for _, w := range kept {
 		if w.done != nil {
 			w.done(At{p.pack.number, w.part.number, w.first}, nil)
 		}
 	}
-}
-
-func (p *partition) settled(err error, n int) {
-	p.j.records.Add(uint64(n))
+	if len(left) > 0 {
+		p.refuse(left, broken, refusal)
+	}
+	p.j.records.Add(uint64(len(kept)))
 	p.mu.Lock()
 	defer p.mu.Unlock()
 	p.down, p.taken = err, 0

@@ -74,6 +74,15 @@ func (j *Journal) read(ctx context.Context, st jetstream.Stream, info *jetstream
 		r.parts[i].lines = map[uint64]*lineRead{}
 	}
 	r.found.Bytes = int64(info.State.Bytes)
+	if j.rehearsed != nil {
+		for _, p := range ps {
+			if err := j.rehearsed.Read(ctx, p.index, func(m Message) error {
+				return r.message(message{p.subject, m.Sequence, m.At, m.Data, m.Writer})
+			}); err != nil {
+				return nil, nil, fmt.Errorf("journal: reading: %w", err)
+			}
+		}
+	}
 	if info.State.Msgs > 0 {
 		if err := r.copies(ctx, st); err != nil {
 			return nil, nil, err

@@ -151,11 +151,11 @@ func (o *owner) run() {
 			gone = o.at.gone
 			if len(o.out) > 0 {
 				out, next = o.at.out, o.out[0]
-			} else if !o.rec.full() {
+			} else if o.mayWork() {
 				in = o.at.in
 			}
 		}
-		if !o.rec.busy() { // a stream is told what is in
+		if o.mayAttach() {
 			attach = o.attach
 		}
 		o.rest()
@@ -184,6 +184,11 @@ func (o *owner) run() {
 		}
 	}
 }
+
+// mayWork reports whether the stream may hand over work, mayAttach whether another
+// may come: it is told what is in.
+func (o *owner) mayWork() bool   { return o.at != nil && len(o.out) == 0 && !o.rec.full() }
+func (o *owner) mayAttach() bool { return !o.rec.busy() }
 
 // rest has the session give back what it works with, unless who follows has yet to be
 // told what it has just seen.

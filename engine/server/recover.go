@@ -232,7 +232,7 @@ func (s *Server) restore(h *history) {
 	delete(s.kept, h.vehicle())
 	s.owners[h.vehicle()] = o
 	s.ended.Add(1)
-	go o.run()
+	s.runs(o)
 }
 
 // kept is a drive of the journal that cannot go on, and why.

@@ -178,7 +178,7 @@ func (s *Server) admit(req *leadlinev1.Open, m *mapUse, sess Session, beside *se
 	s.begins(o)
 	s.ended.Add(1)
 	o.log.Info("drive opened", "map", m.Name, "suite", req.GetHeader().GetSuite())
-	go o.run()
+	s.runs(o)
 	return o, nil
 }
 

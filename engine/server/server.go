@@ -65,6 +65,11 @@ type Server struct {
 	past   []*endedDrive    // that made room for others, in order
 	parts  map[string]*partsUpload
 	ended  sync.WaitGroup // counts owners
+
+	// runs starts an owner's goroutine, awaits waits until it has ended; a rehearsal
+	// has none.
+	runs   func(*owner)
+	awaits func(context.Context, *owner)
 }
 
 // New makes a server, or an error that lists what is wrong with the
@@ -87,26 +92,7 @@ func New(cfg Config) (*Server, error) {
 	if cfg.Log == nil {
 		cfg.Log = slog.New(slog.DiscardHandler)
 	}
-	s := &Server{
-		cfg:         cfg,
-		health:      health.NewServer(),
-		openings:    make(chan struct{}, cfg.Limits.Openings),
-		predictions: make(chan struct{}, cfg.Limits.Predictions),
-		searching:   make(chan struct{}, searchesAtOnce),
-		drawing:     make(chan struct{}, drawnAtOnce),
-		forecasting: make(chan struct{}, forecastsAtOnce),
-		draining:    make(chan struct{}),
-
-		readingResults: make(chan struct{}, resultsAtOnce),
-		owners:         map[string]*owner{},
-		kept:           map[string]*kept{},
-		parts:          map[string]*partsUpload{},
-		pace:           newPace(cfg.Limits.RateInAll, cfg.Limits),
-		alarms:         newAlarmBook(cfg.Now),
-		atlas:          newAtlas(cfg.Maps),
-	}
-	s.load.limit, s.load.over = float64(cfg.Limits.Load), cfg.Limits.LoadOver
-	s.hub = newHub(cfg.Limits, cfg.Now, s.load.thins)
+	s := newServer(cfg)
 	options := []grpc.ServerOption{
 		grpc.Creds(web.Credentials()),
 		grpc.MaxRecvMsgSize(cfg.Limits.MessageBytes),
@@ -161,6 +147,38 @@ func New(cfg Config) (*Server, error) {
 	_ = s.tellHealth()
 	cfg.Metrics.Watch(s.fleet)
 	return s, nil
+}
+
+// newServer is a server that answers nobody and has no journal.
+func newServer(cfg Config) *Server {
+	s := &Server{
+		cfg:         cfg,
+		health:      health.NewServer(),
+		openings:    make(chan struct{}, cfg.Limits.Openings),
+		predictions: make(chan struct{}, cfg.Limits.Predictions),
+		searching:   make(chan struct{}, searchesAtOnce),
+		drawing:     make(chan struct{}, drawnAtOnce),
+		forecasting: make(chan struct{}, forecastsAtOnce),
+		draining:    make(chan struct{}),
+
+		readingResults: make(chan struct{}, resultsAtOnce),
+		owners:         map[string]*owner{},
+		kept:           map[string]*kept{},
+		parts:          map[string]*partsUpload{},
+		pace:           newPace(cfg.Limits.RateInAll, cfg.Limits),
+		alarms:         newAlarmBook(cfg.Now),
+		atlas:          newAtlas(cfg.Maps),
+	}
+	s.load.limit, s.load.over = float64(cfg.Limits.Load), cfg.Limits.LoadOver
+	s.hub = newHub(cfg.Limits, cfg.Now, s.load.thins)
+	s.runs = func(o *owner) { go o.run() }
+	s.awaits = func(ctx context.Context, o *owner) {
+		select {
+		case <-o.dead:
+		case <-ctx.Done():
+		}
+	}
+	return s
 }
 
 // Serve answers on a listener, which it closes, until Shutdown; then it

@@ -163,10 +163,7 @@ func (s *Server) leavePartition(ctx context.Context, i int, why error) {
 	s.forgetEnded(func(d *endedDrive) bool { return s.journal.Partition(d.about.GetVehicle()) == i })
 	s.mu.Unlock()
 	for _, o := range gone {
-		select {
-		case <-o.dead:
-		case <-ctx.Done():
-		}
+		s.awaits(ctx, o)
 	}
 	s.journal.Give(ctx, i)
 }

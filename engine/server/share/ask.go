@@ -4,7 +4,6 @@ import (
 	"cmp"
 	"context"
 	"slices"
-	"time"
 )
 
 // Place is who has a partition.
@@ -19,7 +18,7 @@ type Place struct {
 
 // Where says who has a partition now.
 func (s *Share) Where(i int) Place {
-	now := time.Now()
+	now := s.now()
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	p := &s.core.parts[i]
@@ -39,7 +38,7 @@ func (s *Share) ID() string { return s.o.Self.ID }
 
 // Others are the other servers that are alive, in the order of their names.
 func (s *Share) Others() (out []Server) {
-	now := time.Now()
+	now := s.now()
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	for id, of := range s.core.servers {
@@ -53,7 +52,7 @@ func (s *Share) Others() (out []Server) {
 
 // Own is how many partitions this server serves.
 func (s *Share) Own() (n int) {
-	now := time.Now()
+	now := s.now()
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	for i := range s.core.parts {
@@ -68,7 +67,7 @@ func (s *Share) Own() (n int) {
 func (s *Share) Fresh() bool {
 	s.mu.Lock()
 	defer s.mu.Unlock()
-	return s.core.fresh(time.Now())
+	return s.core.fresh(s.now())
 }
 
 // Retire has this server take and give nothing any more: it is about to leave.

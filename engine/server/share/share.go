@@ -46,7 +46,8 @@ type Options struct {
 // Share is one server's part. Its methods may be called from any goroutine.
 type Share struct {
 	o     Options
-	kv    jetstream.KeyValue
+	kv    Keys
+	now   func() time.Time
 	ended context.Context
 	end   context.CancelFunc
 	tasks sync.WaitGroup
@@ -78,8 +79,7 @@ func Join(ctx context.Context, o Options) (*Share, error) {
 	if err != nil {
 		return nil, err
 	}
-	s := &Share{o: o, kv: kv, poke: make(chan struct{}, 1), resting: make(chan struct{}), rested: make(chan struct{}), core: newCore(o.Self, o.Partitions, o.Lease), changed: make(chan struct{})}
-	s.ended, s.end = context.WithCancel(context.Background())
+	s := newShare(o, atBroker{kv}, time.Now)
 	if err := s.renew(ctx); err != nil {
 		s.end()
 		return nil, fmt.Errorf("share: joining: %w", err)
@@ -100,6 +100,12 @@ func Join(ctx context.Context, o Options) (*Share, error) {
 	s.tasks.Go(s.beat)
 	s.tasks.Go(s.work)
 	return s, nil
+}
+
+func newShare(o Options, k Keys, now func() time.Time) *Share {
+	s := &Share{o: o, kv: k, now: now, poke: make(chan struct{}, 1), resting: make(chan struct{}), rested: make(chan struct{}), core: newCore(o.Self, o.Partitions, o.Lease), changed: make(chan struct{})}
+	s.ended, s.end = context.WithCancel(context.Background())
+	return s
 }
 
 // openKeys opens the bucket, or makes it.
@@ -138,40 +144,39 @@ func (s *Share) watch(w jetstream.KeyWatcher, known chan struct{}) {
 			case e == nil:
 				close(known)
 			default:
-				s.saw(e)
+				s.saw(entry(e))
 			}
 		}
 	}
 }
 
 // saw takes in a key.
-func (s *Share) saw(e jetstream.KeyValueEntry) {
-	now := time.Now()
-	gone := e.Operation() != jetstream.KeyValuePut
+func (s *Share) saw(e Entry) {
+	now, gone := s.now(), e.Gone
 	s.mu.Lock()
 	defer s.mu.Unlock()
-	if id, ok := strings.CutPrefix(e.Key(), serverPrefix); ok {
+	if id, ok := strings.CutPrefix(e.Key, serverPrefix); ok {
 		var of Server
-		if !gone && json.Unmarshal(e.Value(), &of) != nil {
-			s.o.Log.Error("a server's key cannot be read", "key", e.Key())
+		if !gone && json.Unmarshal(e.Value, &of) != nil {
+			s.o.Log.Error("a server's key cannot be read", "key", e.Key)
 			return
 		}
 		if was := s.core.servers[id]; !gone && was == nil && id != s.o.Self.ID {
 			s.o.Log.Info("another server shares the journal", "server", id, "address", of.Address, "version", of.Version)
 		}
-		s.core.sawServer(id, of, e.Revision(), gone, now)
+		s.core.sawServer(id, of, e.Revision, gone, now)
 		return
 	}
-	number, ok := strings.CutPrefix(e.Key(), partitionPrefix)
+	number, ok := strings.CutPrefix(e.Key, partitionPrefix)
 	i, err := strconv.Atoi(number)
 	if !ok || err != nil || i < 0 || i >= s.o.Partitions {
 		return // of another version
 	}
-	owner := string(e.Value())
+	owner := string(e.Value)
 	if gone {
 		owner = ""
 	}
-	s.partition(i, owner, e.Revision(), now)
+	s.partition(i, owner, e.Revision, now)
 }
 
 // partition notes a partition's key; mu is held.
@@ -227,14 +232,14 @@ func (s *Share) renew(ctx context.Context) error {
 	if err != nil {
 		panic("share: " + err.Error()) // there is nothing in it that has no JSON
 	}
-	sent := time.Now()
+	sent := s.now()
 	next, err := s.kv.Update(ctx, key, value, revision)
 	if wrongRevision(err) { // it was swept, or an earlier renewal came through after all
-		var e jetstream.KeyValueEntry
+		var e Entry
 		if e, err = s.kv.Get(ctx, key); errors.Is(err, jetstream.ErrKeyNotFound) {
 			next, err = s.kv.Create(ctx, key, value)
 		} else if err == nil {
-			next, err = s.kv.Update(ctx, key, value, e.Revision())
+			next, err = s.kv.Update(ctx, key, value, e.Revision)
 		}
 	}
 	if err != nil {
@@ -244,7 +249,7 @@ func (s *Share) renew(ctx context.Context) error {
 	defer s.mu.Unlock()
 	wasFresh := s.core.fresh(sent)
 	s.own = next
-	s.core.renew(sent, time.Now())
+	s.core.renew(sent, s.now())
 	if !wasFresh {
 		s.news()
 	}

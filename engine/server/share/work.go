@@ -6,7 +6,6 @@ import (
 	"slices"
 	"strconv"
 	"strings"
-	"time"
 
 	"github.com/nats-io/nats.go/jetstream"
 )
@@ -21,7 +20,7 @@ func (s *Share) work() {
 		default:
 		}
 		s.mu.Lock()
-		do := s.core.next(time.Now())
+		do := s.core.next(s.now())
 		s.mu.Unlock()
 		if do.verb == nothing {
 			select {
@@ -67,7 +66,7 @@ func (s *Share) do(do step) {
 	case hold:
 		err = s.put(ctx, i, s.o.Self.ID, do.revision)
 	case sweep:
-		err = s.kv.Delete(ctx, serverPrefix+do.dead, jetstream.LastRevision(do.deadAt))
+		err = s.kv.Delete(ctx, serverPrefix+do.dead, do.deadAt)
 		if err == nil || wrongRevision(err) {
 			s.learn(ctx, serverPrefix+do.dead)
 		}
@@ -81,7 +80,7 @@ func (s *Share) do(do step) {
 		s.o.Log.Warn("a partition cannot change hands yet", "partition", i+1, "error", err)
 	}
 	s.mu.Lock()
-	s.core.later(i, time.Now().Add(s.o.Lease/beats))
+	s.core.later(i, s.now().Add(s.o.Lease/beats))
 	s.mu.Unlock()
 }
 
@@ -92,7 +91,7 @@ func (s *Share) claim(ctx context.Context, do step) error {
 		if err != nil && !errors.Is(err, jetstream.ErrKeyNotFound) {
 			return err
 		}
-		if err == nil && e.Revision() != do.deadAt {
+		if err == nil && e.Revision != do.deadAt {
 			s.saw(e)
 			return nil
 		}
@@ -111,7 +110,7 @@ func (s *Share) put(ctx context.Context, i int, owner string, over uint64) error
 	}
 	s.mu.Lock()
 	defer s.mu.Unlock()
-	s.core.wrote(i, owner, revision, time.Now())
+	s.core.wrote(i, owner, revision, s.now())
 	s.news()
 	return nil
 }
@@ -145,7 +144,7 @@ func (s *Share) Lost(i int) {
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	s.core.parts[i].state = away
-	s.core.later(i, time.Now().Add(s.o.Lease/beats))
+	s.core.later(i, s.now().Add(s.o.Lease/beats))
 	s.news()
 	s.wake()
 }
@@ -162,7 +161,7 @@ func (s *Share) free(ctx context.Context) {
 			}
 		}
 	}
-	if err := s.kv.Delete(ctx, serverPrefix+s.o.Self.ID, jetstream.LastRevision(own)); err != nil {
+	if err := s.kv.Delete(ctx, serverPrefix+s.o.Self.ID, own); err != nil {
 		s.o.Log.Warn("this server's key cannot be taken out: it ends by itself", "error", err)
 	}
 }
