@@ -1,18 +1,30 @@
 // A stream of news that begins again by itself.
-import { Code, ConnectError } from "@connectrpc/connect";
+import { Code, ConnectError, type CallOptions } from "@connectrpc/connect";
 import type { MessageInitShape } from "@bufbuild/protobuf";
 import type { FollowRequestSchema, FollowResponse } from "../../client/web/leadline/v1/follow_pb.js";
+import type { FollowTrafficRequestSchema, FollowTrafficResponse } from "../../client/web/leadline/v1/traffic_pb.js";
 import { calls, sentence } from "./api";
 import { needsRole, noteIdentity, token } from "./identity";
 
 /** Denied: who asks may not know, and nothing is asked until the token is another. */
 export type Link = { state: "connecting" | "live" | "away" | "denied"; why: string };
 
-type Listener = {
-  news(m: FollowResponse): void;
+type Listener<M> = {
+  news(m: M): void;
   /** The stream is there; fresh if it tells everything anew. */
-  begins(fresh: boolean): void;
+  begins?(fresh: boolean): void;
   link(l: Link): void;
+};
+
+/** What is followed. */
+type Source<M> = {
+  open(resumeToken: string, options: CallOptions): AsyncIterable<M>;
+  /** Where to go on after a message; empty where a stream tells everything anew. */
+  resume(m: M): string;
+  /** Whether nothing comes after a message: the stream's end is then that of what is followed. */
+  last(m: M): boolean;
+  /** What it is called that a role is needed for. */
+  what: string;
 };
 
 const sleep = (ms: number) => new Promise((resolve) => setTimeout(resolve, ms));
@@ -20,8 +32,15 @@ const sleep = (ms: number) => new Promise((resolve) => setTimeout(resolve, ms));
 /** How long a stream may say nothing before the server is asked whether it is there, ms. */
 const quietMost = 8000;
 
-/** Follows until the returned function is called. */
-export function follow(wishes: MessageInitShape<typeof FollowRequestSchema>, on: Listener): () => void {
+/** Follows vehicles until the returned function is called. */
+export const follow = (wishes: MessageInitShape<typeof FollowRequestSchema>, on: Listener<FollowResponse>) =>
+  listen({ open: (resumeToken, options) => calls.follow({ ...wishes, resumeToken }, options), resume: (m) => m.resumeToken, last: () => false, what: "Seeing positions" }, on);
+
+/** Follows a road's traffic until it ends or the returned function is called. */
+export const followTraffic = (wishes: MessageInitShape<typeof FollowTrafficRequestSchema>, on: Listener<FollowTrafficResponse>) =>
+  listen({ open: (_, options) => calls.followTraffic(wishes, options), resume: () => "", last: (m) => !!m.picture?.ended, what: "Seeing traffic" }, on);
+
+function listen<M>(of: Source<M>, on: Listener<M>): () => void {
   let stopped = false;
   let abort = new AbortController();
   const run = async () => {
@@ -46,14 +65,17 @@ export function follow(wishes: MessageInitShape<typeof FollowRequestSchema>, on:
           onHeader: () => {
             pause = 250;
             on.link({ state: "live", why: "" });
-            on.begins(fresh);
+            on.begins?.(fresh);
           },
         };
-        for await (const m of calls.follow({ ...wishes, resumeToken }, options)) {
+        let over = false;
+        for await (const m of of.open(resumeToken, options)) {
           heard = Date.now();
-          resumeToken = m.resumeToken;
+          resumeToken = of.resume(m);
+          over = of.last(m);
           on.news(m);
         }
+        if (over) return;
         on.link({ state: "away", why: "The server has ended the stream." });
       } catch (e) {
         if (stopped) return;
@@ -61,7 +83,7 @@ export function follow(wishes: MessageInitShape<typeof FollowRequestSchema>, on:
           resumeToken = ""; // the server has begun anew
           continue;
         }
-        const lacking = needsRole(e, "Seeing positions", "dispatcher", "analyst");
+        const lacking = needsRole(e, of.what, "dispatcher", "analyst");
         if (lacking) {
           on.link({ state: "denied", why: lacking });
           while (token.value === asked && !stopped) await sleep(250);

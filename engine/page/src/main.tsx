@@ -15,6 +15,8 @@ import { Maps } from "./maps";
 import { PastRuns } from "./past";
 import { address, route, shown, views } from "./route";
 import { clock, lightness, units } from "./settings";
+import { road } from "./traffic";
+import { Traffic } from "./trafficview";
 
 // Whoever opens the page is shown the worst one.
 const stop = effect(() => {
@@ -120,6 +122,17 @@ function Page() {
                 Ahead <small>how good positions will be</small>
               </h2>
               <Ahead />
+            </section>
+          </>
+        )}
+        {v === "traffic" && (
+          <>
+            <MapView key="traffic" />
+            <section class="side" tabIndex={0} aria-label={`Traffic on ${road.value || "no road"}`}>
+              <h2>
+                {road.value || "No road"} <small>traffic that listening posts hear</small>
+              </h2>
+              <Traffic />
             </section>
           </>
         )}

@@ -23,7 +23,7 @@ const fitted = signal(""); // vehicle and map that the view was made for
 
 const current = computed(() => (stage.value ? undefined : (latest.value?.posterior ?? chosenKnown.value?.posterior)));
 const mapName = computed(() => stage.value?.map ?? current.value?.map);
-const under = computed<Ground | undefined>(() => (mapName.value ? ground(mapName.value).value : undefined));
+const under = computed<Ground | undefined>(() => stage.value?.ground ?? (mapName.value ? ground(mapName.value).value : undefined));
 
 /** How long the last drawing of a belief took, ms: placing and painting. */
 export const took = { place: 0, paint: 0 };
@@ -153,7 +153,7 @@ export function MapView() {
         [lastGround, lastPlaces] = [key, places.peek()];
         drawGround(low.current!, v, g, dark.peek());
         clearTimeout(wait);
-        wait = setTimeout(() => void refine(g.map, boxOf(v), v.mPerPx * 0.7), 200);
+        if (!s?.ground) wait = setTimeout(() => void refine(g.map, boxOf(v), v.mPerPx * 0.7), 200);
       }
       const began = performance.now();
       if (s) s.paint(begin(top.current!, v), v, g, dark.peek());
@@ -226,7 +226,7 @@ export function MapView() {
         tabIndex={0}
         role="application"
         aria-roledescription="map"
-        aria-label={`Map of ${mapName.value ?? "no map"} with ${s ? s.label : `the belief of ${chosen.value || "no vehicle"}`}`}
+        aria-label={`Map of ${mapName.value || "no map"} with ${s ? s.label : `the belief of ${chosen.value || "no vehicle"}`}`}
         aria-describedby="map-keys"
         onKeyDown={keys}
         onPointerDown={down}
@@ -241,7 +241,7 @@ export function MapView() {
       <p id="map-keys" class="unseen">
         Arrow keys move the map, plus and minus change its scale, 0 shows all of it, v goes along with the vehicle. With a tool in hand, space points at the middle, and Enter closes an area.
       </p>
-      {!g && <p class="cover">{trouble || (mapName.value ? `The map ${mapName.value} is on its way.` : "Choose a vehicle to see where it may be.")}</p>}
+      {!g && <p class="cover">{s?.wait || trouble || (mapName.value ? `The map ${mapName.value} is on its way.` : "Choose a vehicle to see where it may be.")}</p>}
       {g && (
         <>
           <div class="buttons">

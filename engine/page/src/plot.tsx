@@ -5,7 +5,7 @@ import { figure, length } from "./format";
 import { dark, units } from "./settings";
 
 export type Line = { label: string; values: (number | null)[]; dash?: number[]; colour: "first" | "second" | "quiet" };
-type Props = { title: string; unit: string; times: number[]; lines: Line[]; band?: boolean; log?: boolean; says: string; over?: "the way"; span?: boolean; mark?: number };
+type Props = { title: string; unit: string; times: number[]; lines: Line[]; band?: boolean; log?: boolean; says: string; over?: "the way" | "the road"; span?: boolean; mark?: number };
 
 const colours = () =>
   dark.value

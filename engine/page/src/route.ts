@@ -2,11 +2,13 @@
 import { signal } from "@preact/signals";
 import { choose, chosen } from "./live";
 import { tool } from "./pointing";
+import { chooseRoad, road } from "./traffic";
 
 export const views = [
   ["now", "Now"],
   ["chances", "Chances"],
   ["ahead", "Ahead"],
+  ["traffic", "Traffic"],
   ["past", "Past runs"],
   ["alarms", "Alarms"],
   ["maps", "At the server"],
@@ -20,16 +22,16 @@ function read() {
   shown.value = views.find(([v]) => v === name)?.[0] ?? "now";
   if (vehicle) {
     try {
-      choose(decodeURIComponent(vehicle));
+      (shown.value === "traffic" ? chooseRoad : choose)(decodeURIComponent(vehicle));
     } catch {
-      // No vehicle is called that.
+      // Nothing is called that.
     }
   }
   if (shown.value !== "chances") tool.value = "none";
 }
 
-/** The address of a view of a vehicle, the chosen one if none is named. */
-export const address = (v: ViewName, vehicle = chosen.value) => `#${v}${vehicle ? "/" + encodeURIComponent(vehicle) : ""}`;
+/** The address of a view of a vehicle, or of a road's traffic: the chosen one if none is named. */
+export const address = (v: ViewName, name = v === "traffic" ? road.value : chosen.value) => `#${v}${name ? "/" + encodeURIComponent(name) : ""}`;
 
 /** Goes by the address from now on. */
 export function route() {

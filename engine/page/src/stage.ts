@@ -10,11 +10,15 @@ export type Stage = {
   /** The map is fitted to the points when this changes. */
   key: string;
   map: string;
+  /** What to draw it on where that is no map of the server's. */
+  ground?: Ground;
   /** What it is, for those who do not see it. */
   label: string;
   points: LonLat[];
   paint(ctx: CanvasRenderingContext2D, v: View, g: Ground, dark: boolean): void;
   legend?: ComponentChildren;
+  /** What is said where there is no ground yet. */
+  wait?: string;
 };
 
 export const stage = signal<Stage | undefined>(undefined);

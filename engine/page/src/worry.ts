@@ -1,6 +1,6 @@
 // Who must be called next, and why, in words.
 import { AlarmKind, Status, type Alarm, type Posterior } from "../../client/web/leadline/v1/posterior_pb.js";
-import { duration, length, percent, utcTime } from "./format";
+import { duration, length, percent, utcTime, type Stamp } from "./format";
 
 /** What the page knows of a vehicle. */
 export type Known = {
@@ -127,12 +127,18 @@ export function silenceWords(k: Known, now: number): string {
   return !k.over && quiet > silentFrom ? `Silent for ${duration(quiet)}.` : "";
 }
 
+/** What is to be said of a clock by which something is so old, s; empty if nothing is. */
+export function clockWords(ageS: number, time: Stamp): string {
+  if (Math.abs(ageS) >= 86400) return `Its times are of ${utcTime(time).slice(0, 10)}: a recording, or a clock that is wrong.`;
+  return ageS < -5 ? `Its clock is ${duration(ageS)} ahead of the server's.` : "";
+}
+
 /** What else is to be said of a vehicle. */
 export function remarks(k: Known): string {
   if (k.over) return k.over;
   const out: string[] = [];
   if (!k.posterior.lostAlarm && !radiiHold(k.posterior)) out.push(`That it is lost is ${percent(k.posterior.lost)} probable.`);
-  if (k.posterior.ageS < -5) out.push(`Its clock is ${duration(k.posterior.ageS)} ahead of the server's.`);
-  else if (k.posterior.ageS >= 86400) out.push(`Its times are of ${utcTime(k.posterior.time!).slice(0, 10)}: a recording, or a clock that is wrong.`);
+  const clock = clockWords(k.posterior.ageS, k.posterior.time!);
+  if (clock) out.push(clock);
   return out.join(" ");
 }
