@@ -3,6 +3,8 @@ package page_test
 import (
 	"fmt"
 	"math"
+	"os"
+	"path/filepath"
 	"strings"
 	"testing"
 
@@ -33,8 +35,18 @@ func TestAhead(t *testing.T) {
 	choose("suite", "survey-craft")
 	p.says(".legend", "height")
 
-	load("<b>large</b>.geojson", "new Uint8Array(50e6)")
-	p.says("#ahead-trouble", "The file <b>large</b>.geojson has 47.7 MiB, and a route at most 2")
+	large := filepath.Join(t.TempDir(), "<b>large.geojson")
+	if err := os.WriteFile(large, nil, 0o600); err != nil {
+		t.Fatal(err)
+	}
+	if err := os.Truncate(large, 50e6); err != nil {
+		t.Fatal(err)
+	}
+	load("good.geojson", `'{"type": "LineString", "coordinates": [[-29.995, 45.008], [-29.985, 45.020]]}'`)
+	p.says(".hint", "good.geojson")
+	p.drop("main .side form", large)
+	p.says("#ahead-trouble", "The file <b>large.geojson has 47.7 MiB, and a route at most 2")
+	p.says(".hint", "good.geojson")
 	load("wrong.geojson", `"[1, 2]"`)
 	p.says(".hint", "wrong.geojson")
 	p.click("[...document.querySelectorAll('button')].find(e => e.innerText === 'Forecast')")

@@ -310,6 +310,15 @@ func (p *tab) clickAt(x, y float64) {
 	}
 }
 
+// drop drags files over an element and lets them go there.
+func (p *tab) drop(selector string, paths ...string) {
+	p.t.Helper()
+	at := eval[[2]float64](p, fmt.Sprintf("(() => { const r = document.querySelector(%q).getBoundingClientRect(); return [r.x + r.width / 2, r.y + 20]; })()", selector))
+	for _, kind := range []string{"dragEnter", "dragOver", "drop"} {
+		p.do("Input.dispatchDragEvent", map[string]any{"type": kind, "x": at[0], "y": at[1], "data": map[string]any{"items": []any{}, "files": paths, "dragOperationsMask": 1}}, nil)
+	}
+}
+
 // codes are those of keys that write nothing, or of which it counts.
 var codes = map[string]int{"Tab": 9, "Enter": 13, " ": 32, "ArrowUp": 38, "ArrowDown": 40, "ArrowLeft": 37, "ArrowRight": 39, "Home": 36, "End": 35}
 

@@ -69,6 +69,7 @@ func TestCrowd(t *testing.T) {
 	p.press("Enter")
 	p.await("it is chosen", "document.activeElement.getAttribute('aria-current') === 'true'")
 	p.click("document.getElementById('row-wide')")
+	p.says("main .side h2", "wide")
 	p.await("the belief over the town", "document.querySelector('.legend')?.innerText.includes('probability')")
 	p.shoot("crowd-light")
 	p.clean(r.origin)

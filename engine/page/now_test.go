@@ -25,7 +25,8 @@ func TestNow(t *testing.T) {
 	p.await("three rows", "document.querySelectorAll('a.row').length === 3")
 	t.Logf("three rows after %v", time.Since(began))
 	// A row that is not drawn yet (content-visibility) has no innerText.
-	p.await("a recording is said to be one", "document.querySelector('#row-van-anywhere .say')?.textContent.includes('Its times are of 2026-01-01: a recording, or a clock that is wrong.')")
+	p.await("a recording is said to be one", "document.querySelector('#row-van-anywhere .say')?.textContent.includes('Its times are of 2026-01-01.')")
+	p.says(".list .hint", "it is a recording, or a clock is wrong")
 	p.await("the map", "document.querySelector('.legend')")
 	p.await("figures over time", "document.querySelectorAll('.plot canvas').length === 3")
 	p.shoot("now-light")

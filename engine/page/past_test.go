@@ -109,6 +109,7 @@ func TestPastRuns(t *testing.T) {
 	p.says("#past-trouble", "wrong.csv is no track.csv: there is no column time")
 	load(calm, rough)
 	p.says("#past-figures", "rough.csv")
+	p.await("nothing more is said of a bad file", "document.querySelector('#past-trouble').innerText === ''")
 	worst := func(which string, second int) {
 		t.Helper()
 		p.click(fmt.Sprintf("[...document.querySelectorAll('button')].find(e => e.innerText === 'To the worst stretch of %s')", which))

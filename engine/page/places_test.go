@@ -49,13 +49,15 @@ func TestPlaces(t *testing.T) {
 		"list.geojson":    {`"[1]"`, "is no GeoJSON"},
 		"metres.geojson":  {`'{"type":"Point","coordinates":[500000,4]}'`, "has 500000, 4 in feature 1, which are no degrees"},
 		"surface.geojson": {`'{"type":"TIN","coordinates":[]}'`, "has the geometry TIN"},
-		"short.geojson":   {`'{"type":"LineString","coordinates":[[1,2]]}'`, "has 1 points in feature 1"},
+		"short.geojson":   {`'{"type":"LineString","coordinates":[[1,2]]}'`, "has 1 point in feature 1, where there must be 2 or more"},
 		"empty.geojson":   {`'{"type":"FeatureCollection","features":[]}'`, "has no place in it"},
 	} {
 		load(name, c[0])
 		p.says("#places-said", "The file "+name+" "+c[1])
 		p.says(".legend", "places of yards.geojson")
 	}
+	load("yards.geojson", fmt.Sprintf("%q", text))
+	p.await("nothing more is said of a bad file", "document.querySelector('#places-said').innerText === ''")
 
 	p.tabTo("document.querySelector('input[name=place]')")
 	p.write("old y")

@@ -51,6 +51,20 @@ func TestTasks(t *testing.T) {
 	}
 	p.says(".legend", "probability per m")
 
+	// A vehicle that nobody has heard of, and one that no address can name, in the address.
+	for address, words := range map[string]string{
+		"#now/%3Cimg%20src%3Dx%20onerror%3D%22document.title%3D1%22%3E": "No vehicle <img src=x onerror=\"document.title=1\"> is here yet.",
+		"#chances/nobody": "No vehicle nobody is here yet.",
+	} {
+		eval[any](p, fmt.Sprintf("location.hash = %q", address))
+		p.says("main .side", words)
+		eval[any](p, "location.hash = '#chances/%E0%A4%A'")
+		p.await("what was chosen stays", "document.querySelector('main.chances')")
+	}
+	p.click("document.getElementById('row-van')")
+	p.says("main .side h2", "van")
+	p.says(".legend", "probability per m")
+
 	// A chance, by keyboard.
 	lon, lat := math.Round(at.GetMean().GetLon()*1e6)/1e6, math.Round(at.GetMean().GetLat()*1e6)/1e6
 	p.tabTo("document.querySelector('[name=place]')")

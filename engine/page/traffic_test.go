@@ -146,7 +146,7 @@ func TestTraffic(t *testing.T) {
 	const hostile = `<img src=x onerror="document.title=1">`
 	last := upTo(scene.Drive, seconds)[len(upTo(scene.Drive, seconds))-1]
 	r.send(f, []sensor.Event{{Time: last.Time, Sensor: "stray", Number: 1, Measurement: sensor.AcousticBearing{Post: hostile, SigmaRad: 0.05}}})
-	p.says(".note.bad", "A post that is not this road's, "+hostile+" (1 times)")
+	p.says(".note.bad", "A post that is not this road's, "+hostile+" (1 time)")
 	p.says("main .side", "1 refused")
 	p.says("main .side", "No news of it for")
 
@@ -173,7 +173,10 @@ func TestTraffic(t *testing.T) {
 	p.says("main .side", "More vehicles than are followed")
 	p.resize(390, 844)
 	p.do("Emulation.setEmulatedMedia", map[string]any{"features": []map[string]string{{"name": "prefers-color-scheme", "value": "dark"}}}, nil)
+	p.await("a narrow map", "document.querySelector('.map').clientWidth < 400")
+	p.click("[...document.querySelectorAll('.buttons button')].find(e => e.innerText === 'Whole map')")
 	p.audit("traffic, narrow and dark")
+	eval[any](p, "scrollTo(0, 0)")
 	p.shoot("traffic-narrow-dark")
 	eval[any](p, "document.querySelector('#lines').scrollIntoView()")
 	p.shoot("traffic-counts-narrow-dark")

@@ -6,7 +6,7 @@ import { MapKind, type MapDescription } from "../../client/web/leadline/v1/map_p
 import type { MessageInitShape } from "@bufbuild/protobuf";
 import { calls, sentence, soon } from "./api";
 import { css } from "./colour";
-import { duration, figure, length, percent } from "./format";
+import { duration, figure, length, percent, some } from "./format";
 import { close as latest, link } from "./live";
 import { drawArea, drawMark } from "./paint";
 import { Plot } from "./plot";
@@ -49,6 +49,7 @@ async function load() {
 
 function chooseMap(name: string) {
   giveUp();
+  trouble.value = "";
   map.value = name;
   forecast.value = undefined;
   way.value = [];
@@ -67,13 +68,12 @@ function giveUp() {
 /** Takes a file as the route. */
 async function take(f: File | undefined) {
   if (!f) return;
-  giveUp();
-  forecast.value = undefined;
-  file.value = undefined;
-  if (f.size > largestFile) {
+  if (f.size > largestFile) { // the route before it stays
     trouble.value = `The file ${f.name} has ${figure(f.size / 2 ** 20)} MiB, and a route at most 2: simplify it, or leave the other features out.`;
     return;
   }
+  giveUp();
+  forecast.value = undefined;
   trouble.value = "";
   way.value = [];
   tool.value = "none";
@@ -107,7 +107,7 @@ async function ask() {
       else if (m.news.case === "forecast") forecast.value = m.news.value;
     }
   } catch (e) {
-    if (mine === running) trouble.value = sentence(e).replace("Forecast: ", "");
+    if (mine === running) trouble.value = sentence(e);
   }
   if (mine === running) giveUp();
 }
@@ -201,6 +201,7 @@ function Form() {
             if (tool.value === "route") tool.value = "none";
             else {
               giveUp();
+              trouble.value = "";
               forecast.value = file.value = undefined;
               tool.value = "route";
             }
@@ -228,7 +229,7 @@ function Form() {
           : file.value
             ? `${file.value.name}, ${figure(Math.max(file.value.text.length, 100) / 1000, 2)} kB.`
             : way.value.length > 1
-              ? `A drawn route of ${way.value.length} points.`
+              ? `A drawn route of ${some(way.value.length, "point")}.`
               : "GeoJSON with one LineString, or GPX with one route or track; it may be dropped here."}
       </p>
       <label>
@@ -294,7 +295,7 @@ function Result({ f }: { f: Forecast }) {
   return (
     <section aria-label="Forecast">
       <p class="lead" role="status" id="ahead-answer">
-        {length(f.lengthM)} in {duration(f.durationS)}: 95 % within {length(f.medianRadius95M)} on half of the way, {length(f.worstRadius95M)} at worst, {length(f.worstAtM)} along.{" "}
+        {length(f.lengthM)} in {duration(f.durationS)}: 95 % within {length(f.medianRadius95M)} on half of the way, {length(f.worstRadius95M)} at worst, {f.worstAtM < 1 ? "at its start" : `${length(f.worstAtM)} along`}.{" "}
         {f.beyondLimit > 0 ? `Beyond ${length(f.limitM)} on ${percent(f.beyondLimit)} of the way.` : `Nowhere beyond ${length(f.limitM)}.`}
       </p>
       <Plot

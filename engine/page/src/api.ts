@@ -1,6 +1,7 @@
 // The server's calls.
 import { Code, ConnectError, createClient } from "@connectrpc/connect";
 import { createConnectTransport } from "@connectrpc/connect-web";
+import { BinaryReader } from "@bufbuild/protobuf/wire";
 import { PositionService } from "../../client/web/leadline/v1/service_pb.js";
 import { identify } from "./identity";
 
@@ -17,6 +18,20 @@ export function sentence(e: unknown): string {
   }
   const text = rawMessage.charAt(0).toUpperCase() + rawMessage.slice(1);
   return /[.!?]$/.test(text) ? text : text + ".";
+}
+
+/** The server's reason for refusing a call, as reason.proto has it without REASON_; empty if it gave none. */
+export function reasonOf(e: unknown): string {
+  for (const d of ConnectError.from(e).details) {
+    if (!("type" in d) || d.type !== "google.rpc.ErrorInfo") continue;
+    const r = new BinaryReader(d.value);
+    while (r.pos < r.len) {
+      const [field, wire] = r.tag();
+      if (field === 1) return r.string();
+      r.skip(wire, field);
+    }
+  }
+  return "";
 }
 
 /** Patience with calls that are answered at once, ms. */

@@ -8,7 +8,7 @@ import { calls, sentence, soon } from "./api";
 import { Copy, shellWord } from "./copying";
 import { figure, length, percent, place, readPlace, type CoordinateForm } from "./format";
 import { ground } from "./ground";
-import { chosen, chosenKnown, close as latest } from "./live";
+import { chosen, chosenKnown, close as latest, nobody } from "./live";
 import { circle } from "./paintall";
 import { find, middle, named, places } from "./places";
 import { asksFor, close, closed, corners, forgetArea, spot, spotRadiusM, tool } from "./pointing";
@@ -19,7 +19,7 @@ import { lookAt } from "./stage";
 const risk = signal(""); // as chosen; empty is the suite's
 const form = signal<CoordinateForm>("decimal");
 
-type Answer = { posterior?: Posterior; inside?: number; trouble: string };
+type Answer = { posterior?: Posterior; inside?: number; trouble: string; /** What it is of. */ of?: string };
 const answer = signal<Answer>({ trouble: "" });
 
 /** The area that is asked about, as a ring. */
@@ -32,6 +32,9 @@ function asked(): LonLat[] | undefined {
   return circle(spotRadiusM.value).map((c) => g.frame.inverse({ e: at.e + c.e, n: at.n + c.n }));
 }
 
+/** What an answer is of: a vehicle and an area. */
+const question = (ring: LonLat[] | undefined) => JSON.stringify([chosen.value, ring]);
+
 let asking = false;
 let again = false;
 
@@ -43,6 +46,7 @@ async function ask() {
   }
   asking = true;
   const [vehicle, ring, chosenRisk] = [chosen.peek(), asked(), Number(risk.peek())];
+  const of = question(ring);
   try {
     const { answers } = await calls.where(
       {
@@ -53,9 +57,9 @@ async function ask() {
       soon,
     );
     const a = answers[0];
-    answer.value = { posterior: a.posterior, inside: a.posterior?.areaProbability, trouble: a.failure?.message ?? "" };
+    answer.value = { posterior: a.posterior, inside: a.posterior?.areaProbability, trouble: a.failure?.message ?? "", of };
   } catch (e) {
-    answer.value = { trouble: sentence(e) };
+    answer.value = { trouble: sentence(e), of };
   }
   await new Promise((resolve) => setTimeout(resolve, 300));
   asking = false;
@@ -75,7 +79,8 @@ export function Chances() {
     [],
   );
   const p = latest.value?.posterior ?? chosenKnown.value?.posterior;
-  if (!p) return <p class="empty">Choose a vehicle in the list: its chances show here.</p>;
+  if (!chosen.value) return <p class="empty">Choose a vehicle in the list: its chances show here.</p>;
+  if (!p) return <p class="empty">{nobody()}</p>;
   return (
     <>
       <Inside p={p} />
@@ -165,7 +170,7 @@ function Inside({ p }: { p: Posterior }) {
         </label>
       )}
       <p class="answer" role="status" id="inside-answer">
-        {ring && a.inside !== undefined ? (
+        {ring && a.of === question(ring) && a.inside !== undefined ? (
           <>
             <b>{percent(a.inside)}</b> {closed.value ? `inside ${asksFor.value || "the area"}` : `within ${length(spotRadiusM.value)} of ${asksFor.value || "the place"}`}
           </>

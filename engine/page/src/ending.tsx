@@ -2,6 +2,7 @@
 import { signal } from "@preact/signals";
 import { useEffect, useRef } from "preact/hooks";
 import { calls, sentence, soon } from "./api";
+import { some } from "./format";
 import { needsRole } from "./identity";
 
 type Drive = { vehicle: string; drive: string };
@@ -21,7 +22,7 @@ async function end(d: Drive) {
   said.value = "Ending it.";
   try {
     const { closed } = await calls.endDrive(d, soon);
-    said.value = `The ${named(d)} has ended: ${closed!.accepted} measurements taken, ${closed!.refused} refused, ${closed!.posteriors} posteriors.`;
+    said.value = `The ${named(d)} has ended: ${some(closed!.accepted, "measurement")} taken, ${closed!.refused} refused, ${some(closed!.posteriors, "posterior")}.`;
     endings.value++;
   } catch (e) {
     said.value = "";

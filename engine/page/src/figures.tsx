@@ -4,17 +4,17 @@ import { useMemo } from "preact/hooks";
 import { useSignal } from "@preact/signals";
 import { Ended, EndButton } from "./ending";
 import { clockTimes, duration, figure, length, percent, speed, utcTime } from "./format";
-import { chosen, chosenKnown, close, closeTrouble, past } from "./live";
+import { chosen, chosenKnown, close, closeTrouble, nobody, past } from "./live";
 import { measured, nuisanceName } from "./measured";
 import { Plot } from "./plot";
 import { clock } from "./settings";
-import { alarmWords, onRoads, radiiHold, whereabouts } from "./worry";
+import { alarmWords, clockWords, onRoads, radiiHold, whereabouts } from "./worry";
 
 export function Figures() {
   const [c, k] = [close.value, chosenKnown.value];
   const p = c?.posterior ?? k?.posterior;
   if (!chosen.value) return <p class="empty">Choose a vehicle in the list: its figures show here.</p>;
-  if (!p) return <p class="empty">{closeTrouble.value || `No vehicle ${chosen.value} is here yet. Its news shows as soon as there is any.`}</p>;
+  if (!p) return <p class="empty">{nobody()}</p>;
   const age = c ? (clock.value - c.receivedAt) / 1000 : 0;
   return (
     <>
@@ -22,6 +22,7 @@ export function Figures() {
       {k?.over && <p class="note">{k.over}</p>}
       {closeTrouble.value && <p class="note bad">{closeTrouble.value} What is shown is {duration(age)} old.</p>}
       {!closeTrouble.value && !k?.over && age > 3 && <p class="note">No news of it for {duration(age)}.</p>}
+      {clockWords(p.ageS, p.time!) && <p class="note">{clockWords(p.ageS, p.time!)}</p>}
       {p.alarms.map((a) => (
         <p key={`${a.kind}${a.sensor}${a.post}`} class="note bad">
           Alarm: {alarmWords(a)}.

@@ -32,6 +32,9 @@ export function percent(p: number): string {
   return `${Math.round(100 * p)}\u00a0%`;
 }
 
+/** So many of something; its plural has an s. */
+export const some = (n: number | bigint, one: string) => `${n} ${one}${Number(n) === 1 ? "" : "s"}`;
+
 /** A duration of so many seconds. */
 export function duration(s: number): string {
   const v = Math.abs(s);

@@ -1,10 +1,10 @@
 // The worry list: one row a vehicle, the worst first.
 import { useComputed } from "@preact/signals";
-import { length } from "./format";
+import { length, some } from "./format";
 import { chosen, fleet, holdOrder, link, order } from "./live";
 import { address, shown } from "./route";
 import { clock } from "./settings";
-import { radiiHold, ratio, remarks, silenceWords, statusWords, whereabouts, worry, type Known } from "./worry";
+import { otherDay, radiiHold, ratio, remarks, silenceWords, statusWords, whereabouts, worry, type Known } from "./worry";
 
 /** Where a multiple of the alert limit lies on the ruler, 0 to 1; the limit itself is in the middle. */
 export const along = (of: number) => Math.min(0.99, Math.max(0.01, 0.5 + Math.log2(of) / 8));
@@ -70,11 +70,12 @@ function keys(e: KeyboardEvent) {
 
 export function List() {
   const names = order.value;
+  const otherDays = useComputed(() => order.value.some((name) => otherDay(fleet.get(name)!.value.posterior.ageS))).value;
   const waits = { connecting: "Asking the server who is here.", away: "Nobody is known here while the server does not answer.", denied: link.value.why, live: "No vehicle is here yet. It shows as soon as one is fed, such as by" }[link.value.state];
   return (
     <section class="list" aria-label="Vehicles, worst first">
       <h2>
-        Who to call next <small>{names.length ? `${names.length} vehicle${names.length > 1 ? "s" : ""}, worst first` : ""}</small>
+        Who to call next <small>{names.length ? `${some(names.length, "vehicle")}, worst first` : ""}</small>
       </h2>
       {names.length > 0 && (
         <p class="ruler-head" aria-hidden="true">
@@ -83,6 +84,7 @@ export function List() {
           <span>less sure</span>
         </p>
       )}
+      {otherDays && <p class="hint">Where times are of another day, it is a recording, or a clock is wrong.</p>}
       {names.length === 0 ? (
         <p class="empty">
           {waits} {link.value.state === "live" && <code>leadline feed DRIVE --to {location.host}</code>}

@@ -38,6 +38,9 @@ export const closeTrouble = signal("");
 /** The last satellite fix that came. */
 export const fix = signal<{ at: LonLat; sigmaM: number; ms: number } | undefined>(undefined);
 
+/** Why nothing is known of the chosen vehicle, in words. */
+export const nobody = () => closeTrouble.value || `No vehicle ${chosen.value} is here yet. Its news shows as soon as there is any.`;
+
 /** The chosen vehicle as the list knows it. */
 export const chosenKnown = computed(() => (order.value.includes(chosen.value) ? fleet.get(chosen.value)?.value : undefined));
 
@@ -93,6 +96,12 @@ export const holdOrder = () => {
 
 const latest = (name: string) => waiting.get(name) ?? fleet.get(name)?.peek();
 
+/** Whether a posterior came after an earlier one of its drive, so that its age tells of clocks and delays alone. */
+function goesOn(name: string, drive: string, p: Posterior): boolean {
+  const k = latest(name);
+  return k?.drive === drive && (k.moves || millis(k.posterior.time!) !== millis(p.time!));
+}
+
 function over(name: string, why: string) {
   const k = latest(name);
   if (k && k.over !== why) put(name, { ...k, over: why });
@@ -132,7 +141,7 @@ export function start() {
         heardAt.value = Date.now();
         switch (m.news.case) {
           case "posterior":
-            put(m.vehicle, { vehicle: m.vehicle, drive: m.drive, posterior: m.news.value, receivedAt: Date.now(), over: "" });
+            put(m.vehicle, { vehicle: m.vehicle, drive: m.drive, posterior: m.news.value, receivedAt: Date.now(), over: "", moves: goesOn(m.vehicle, m.drive, m.news.value) });
             break;
           case "farewell":
             over(m.vehicle, m.news.value.ended ? "The drive has ended." : `No more news: ${m.news.value.reason}.`);

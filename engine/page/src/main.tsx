@@ -39,6 +39,7 @@ function Identity() {
   return (
     <form
       class="identity"
+      aria-label="Who you are"
       onSubmit={(e) => {
         e.preventDefault();
         useToken(new FormData(e.currentTarget).get("token") as string);

@@ -5,7 +5,7 @@ import { MapKind, type MapDescription } from "../../client/web/leadline/v1/map_p
 import { calls, sentence, soon } from "./api";
 import { Copy, shellWord } from "./copying";
 import { Drives } from "./drives";
-import { figure } from "./format";
+import { figure, some } from "./format";
 import { link } from "./live";
 import { Upload } from "./upload";
 
@@ -49,14 +49,14 @@ async function open(name: string) {
 function Facts({ m }: { m: MapDescription }) {
   const roads = m.kind === MapKind.ROADS;
   const rows: [string, string][] = [
-    ["What", roads ? `roads: ${m.edges} directed edges, ${figure(m.lengthM / 1000)} km` : `heights: ${m.columns} × ${m.rows}, ${figure(m.spacingM)} m apart`],
+    ["What", roads ? `roads: ${some(m.edges, "directed edge")}, ${figure(m.lengthM / 1000)} km` : m.columns ? `heights: ${m.columns} × ${m.rows}, ${figure(m.spacingM)} m apart` : "an open plane, without heights"],
     ["Fingerprint", m.fingerprint],
     ["Source", m.source || "not stated"],
     ["Licence", m.licence || "not stated"],
     ...(m.verticalDatum ? ([["Heights", `above ${m.verticalDatum}, sigma ${m.heightSigmaM ? figure(m.heightSigmaM) + " m" : "not stated"}`]] as [string, string][]) : []),
     ["Within", `${m.southWest!.lat!.toFixed(5)}, ${m.southWest!.lon!.toFixed(5)} to ${m.northEast!.lat!.toFixed(5)}, ${m.northEast!.lon!.toFixed(5)}`],
     ["Frame", m.frame],
-    ["In use", `${m.sessions} drives${m.olderSessions ? `, ${m.olderSessions} on an older one` : ""}`],
+    ["In use", `${some(m.sessions, "drive")}${m.olderSessions ? `, ${m.olderSessions} on an older one` : ""}`],
   ];
   return (
     <dl class="pairs">

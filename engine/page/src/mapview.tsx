@@ -6,7 +6,7 @@ import { figure, length, percent } from "./format";
 import { ground, groundTrouble, refine, type Box, type Ground } from "./ground";
 import { chosen, chosenKnown, close as latest, fix, past } from "./live";
 import { beginTop } from "./paintall";
-import { begin, boxOf, drawGround, toEN, type View } from "./paint";
+import { begin, boxOf, drawGround, lay, toEN, writeNames, type View } from "./paint";
 import { leftOut, placeBelief, type Placed } from "./paintbelief";
 import { PlacesButton } from "./placesview";
 import { places, placesHidden, takePlaces } from "./places";
@@ -88,6 +88,9 @@ function draws(run: () => void) {
   };
 }
 
+/** The names of roads and places, drawn with the ground and laid over beliefs. */
+const names = document.createElement("canvas");
+
 let placedOf: unknown;
 let placed: Placed | undefined;
 
@@ -152,12 +155,16 @@ export function MapView() {
       if (key !== lastGround || places.peek() !== lastPlaces) {
         [lastGround, lastPlaces] = [key, places.peek()];
         drawGround(low.current!, v, g, dark.peek());
+        writeNames(names, v, g, dark.peek());
         clearTimeout(wait);
         if (!s?.ground) wait = setTimeout(() => void refine(g.map, boxOf(v), v.mPerPx * 0.7), 200);
       }
       const began = performance.now();
-      if (s) s.paint(begin(top.current!, v), v, g, dark.peek());
-      else beginTop(top.current!, v, g, p!, belief(g));
+      if (s) {
+        const ctx = begin(top.current!, v);
+        lay(ctx, names, v);
+        s.paint(ctx, v, g, dark.peek());
+      } else beginTop(top.current!, v, g, p!, belief(g), names);
       took.paint = performance.now() - began;
     });
     return () => {
@@ -244,9 +251,11 @@ export function MapView() {
       {!g && <p class="cover">{s?.wait || trouble || (mapName.value ? `The map ${mapName.value} is on its way.` : "Choose a vehicle to see where it may be.")}</p>}
       {g && (
         <>
-          <div class="buttons">
+          <div class="buttons zoom">
             <button onClick={() => zoom(1 / 1.5)} aria-label="Larger scale" title="Larger scale (+)">+</button>
             <button onClick={() => zoom(1.5)} aria-label="Smaller scale" title="Smaller scale (−)">−</button>
+          </div>
+          <div class="buttons">
             <button onClick={() => fitMap(g)} title="Show the whole map (0)">Whole map</button>
             {p && <button
               aria-pressed={along.value}

@@ -73,7 +73,7 @@ const widths = [0, 3, 4.5, 6]; // of a road by weight, px
 /** Where a name is written, px: its middle, and how far it reaches. */
 export type Taken = { x: number; y: number; r: number };
 
-/** Draws the ground: relief, roads, places, names. */
+/** Draws the ground: relief, roads, places. */
 export function drawGround(canvas: HTMLCanvasElement, v: View, g: Ground, dark: boolean) {
   const ctx = begin(canvas, v);
   const colours = ink(dark);
@@ -104,11 +104,20 @@ export function drawGround(canvas: HTMLCanvasElement, v: View, g: Ground, dark: 
       }
     }
   });
-  const laid = layPlaces(g.frame);
-  drawPlaces(ctx, v, laid, dark);
+  drawPlaces(ctx, v, layPlaces(g.frame), dark);
+}
+
+/** Writes the names of places and roads, on a canvas that is laid over what must not hide them. */
+export function writeNames(canvas: HTMLCanvasElement, v: View, g: Ground, dark: boolean) {
+  const ctx = begin(canvas, v);
   const taken: Taken[] = [];
-  namePlaces(ctx, v, laid, dark, taken);
-  drawNames(ctx, v, s, dark, taken);
+  namePlaces(ctx, v, layPlaces(g.frame), dark, taken);
+  drawNames(ctx, v, bestSheet(g, v), dark, taken);
+}
+
+/** Lays one canvas of a view over another. */
+export function lay(ctx: Ctx, canvas: HTMLCanvasElement, v: View) {
+  if (canvas.width > 0 && canvas.height > 0) ctx.drawImage(canvas, 0, 0, v.width, v.height);
 }
 
 function bestSheet(g: Ground, v: View): Sheet {

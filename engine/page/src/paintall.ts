@@ -3,17 +3,18 @@ import type { Posterior } from "../../client/web/leadline/v1/posterior_pb.js";
 import { Status } from "../../client/web/leadline/v1/posterior_pb.js";
 import type { Ground } from "./ground";
 import { fix, past } from "./live";
-import { begin, drawArea, drawCircle, drawMark, drawTrack, type View } from "./paint";
+import { begin, lay, drawArea, drawCircle, drawMark, drawTrack, type View } from "./paint";
 import { drawBelief, type Placed } from "./paintbelief";
 import { closed, corners, spot, spotRadiusM } from "./pointing";
 import type { LonLat } from "./project";
 import { dark } from "./settings";
 import { radiiHold } from "./worry";
 
-export function beginTop(canvas: HTMLCanvasElement, v: View, g: Ground, p: Posterior, belief: Placed | undefined) {
+export function beginTop(canvas: HTMLCanvasElement, v: View, g: Ground, p: Posterior, belief: Placed | undefined, names: HTMLCanvasElement) {
   const [ctx, d] = [begin(canvas, v), dark.peek()];
   const at = (q: LonLat) => g.frame.forward(q);
   if (belief) drawBelief(ctx, v, belief, d);
+  lay(ctx, names, v);
   drawTrack(ctx, v, past.peek().map((q) => (q.located ? at(q.at) : undefined)), d);
   const mean = at(p.mean as LonLat);
   if (p.radii) drawCircle(ctx, v, mean, p.radii.radius95M, radiiHold(p) ? [] : [3, 5], d);

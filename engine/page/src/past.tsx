@@ -73,7 +73,7 @@ async function choose(which: typeof first, name: string) {
 }
 
 async function load(list: FileList | null) {
-  trouble.value = "";
+  const wrong: string[] = [];
   for (const f of list ?? []) {
     try {
       const r = await ofTable(f);
@@ -85,9 +85,10 @@ async function load(list: FileList | null) {
       const which = first.value ? second : first;
       await choose(which, "file " + name);
     } catch (e) {
-      trouble.value = (e as Error).message;
+      wrong.push((e as Error).message);
     }
   }
+  trouble.value = wrong.join(" ");
 }
 
 /** Drives that have ended and made room for others. */

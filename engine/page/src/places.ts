@@ -1,5 +1,6 @@
 // Places of the person's own: a GeoJSON file, read and kept in the browser alone.
 import { computed, effect, signal } from "@preact/signals";
+import { some } from "./format";
 import type { EN, Frame, LonLat } from "./project";
 
 /** What a file's feature is, as far as it is drawn and found by name. */
@@ -40,7 +41,7 @@ export function readPlaces(text: string): Place[] {
   };
   const line = (v: unknown, least: number, where: string): LonLat[] => {
     const out = list(v, where).map((p) => point(p, where));
-    if (out.length < least) throw new Wrong(`has ${out.length} points in ${where}, where there must be ${least} or more`);
+    if (out.length < least) throw new Wrong(`has ${some(out.length, "point")} in ${where}, where there must be ${least} or more`);
     return out;
   };
   const add = (g: unknown, to: Place, where: string, depth = 0): void => {

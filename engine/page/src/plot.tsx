@@ -9,8 +9,8 @@ type Props = { title: string; unit: string; times: number[]; lines: Line[]; band
 
 const colours = () =>
   dark.value
-    ? { first: "#8fb4ff", second: "#ffb454", quiet: "#8b98a5", text: "#c3ccd4", grid: "#2b333a", band: "rgba(143,180,255,.18)" }
-    : { first: "#2456c9", second: "#a34a00", quiet: "#5d6670", text: "#33373b", grid: "#e0ddd5", band: "rgba(36,86,201,.14)" };
+    ? { first: "#8fb4ff", second: "#ffb454", quiet: "#8b98a5", text: "#c3ccd4", grid: "#242b31", band: "rgba(143,180,255,.18)" }
+    : { first: "#2456c9", second: "#a34a00", quiet: "#5d6670", text: "#33373b", grid: "#ece9e2", band: "rgba(36,86,201,.14)" };
 
 /** Lines over time; with a band between the second and the third. */
 export function Plot(props: Props) {
@@ -32,7 +32,14 @@ export function Plot(props: Props) {
         scales: { x: { time: !props.over }, y: props.log ? { distr: 3 } : { range: (_, a, b) => spread(a, b) } },
         axes: [
           { ...axis, space: 58, size: 26, gap: 3, values: (_, ts) => ts.map((t) => (props.over ? length(t) : new Date(t * 1000).toISOString().slice(11, 19))) },
-          { ...axis, size: 50, gap: 3, space: 24, values: (_, vs) => labels(vs) },
+          {
+            ...axis,
+            ...(props.log && { grid: { ...axis.grid, filter: tens }, ticks: { ...axis.ticks, filter: tens } }),
+            size: 50,
+            gap: 3,
+            space: 24,
+            values: (_, vs) => labels(vs),
+          },
         ],
         series: [{}, ...props.lines.map((l) => ({ label: l.label, stroke: c[l.colour], width: l.colour === "quiet" ? 1 : 1.8, dash: l.dash, spanGaps: props.span, points: { show: false } }))],
         hooks: {
@@ -81,6 +88,9 @@ export function Plot(props: Props) {
     </figure>
   );
 }
+
+/** Powers of ten, which alone have a line across. */
+const tens = (_: uPlot, vs: number[]) => vs.map((v) => (Math.abs(Math.log10(v) - Math.round(Math.log10(v))) < 1e-9 ? v : null));
 
 /** Figures beside an axis, with as many digits as tell them apart. */
 function labels(vs: (number | null)[]): string[] {

@@ -3,7 +3,7 @@ import { effect, signal } from "@preact/signals";
 import { useEffect, useMemo } from "preact/hooks";
 import { TrafficDoubtKind, type LineCount, type TrafficDoubt, type TrafficPicture } from "../../client/web/leadline/v1/traffic_pb.js";
 import { beliefScale, css } from "./colour";
-import { clockTimes, duration, figure, length, percent, utcTime } from "./format";
+import { clockTimes, duration, figure, length, percent, some, utcTime } from "./format";
 import { link } from "./live";
 import { densest, intensityDecades, layRoad, paintTraffic, wayOf, type Laid } from "./painttraffic";
 import { Plot } from "./plot";
@@ -109,8 +109,8 @@ function Picture({ p, laid, receivedAt }: { p: TrafficPicture; laid: Laid; recei
   return (
     <>
       <p class="lead" id="traffic-answer">
-        {n === 0 ? "No vehicle is heard" : `${n} vehicle${n === 1 ? "" : "s"} on the road`}
-        {n > 0 && `: ${count("forward")} forward, ${count("backward")} backward${unsure ? `, ${unsure} either way` : ""}`}. {figure(p.expected, 2)} are expected, those that are less sure counted in.
+        {n === 0 ? "No vehicle is heard" : `${some(n, "vehicle")} on the road`}
+        {n > 0 && `: ${count("forward")} forward, ${count("backward")} backward${unsure ? `, ${unsure} either way` : ""}`}. {figure(p.expected, 2)} expected, those that are less sure counted in.
       </p>
       {p.ended && <p class="note">The drive has ended: this is what was known last.</p>}
       {!p.ended && !trafficTrouble.value && since > 3 && <p class="note">No news of it for {duration(since)}.</p>}
@@ -145,7 +145,7 @@ function Doubt({ d }: { d: TrafficDoubt }) {
     <p class="note bad">
       {doubtWords[d.kind] ?? doubtWords[0]}
       {d.post && `, ${d.post}`}
-      {d.count > 0n && ` (${d.count} times)`}: {d.detail}.
+      {d.count > 0n && ` (${some(d.count, "time")})`}: {d.detail}.
     </p>
   );
 }

@@ -3,7 +3,7 @@ import { sha256 } from "@noble/hashes/sha2.js";
 import { bytesToHex } from "@noble/hashes/utils.js";
 import { signal } from "@preact/signals";
 import { MapKind, type MapDescription } from "../../client/web/leadline/v1/map_pb.js";
-import { calls, sentence } from "./api";
+import { calls, reasonOf, sentence } from "./api";
 import { figure } from "./format";
 import { needsRole } from "./identity";
 
@@ -101,7 +101,7 @@ async function send(maps: MapDescription[], uploaded: () => void) {
     uploaded();
   } catch (e) {
     if (mine !== turn) return;
-    trouble.value = e instanceof Error && !("code" in e) ? e.message : (needsRole(e, "Uploading a map", "administrator") ?? sentence(e).replace(/^Upload: (.)/, (_, c: string) => c.toUpperCase()).replace("or set replace", "or tick the box"));
+    trouble.value = e instanceof Error && !("code" in e) ? e.message : (needsRole(e, "Uploading a map", "administrator") ?? (reasonOf(e) === "MAP_EXISTS" ? `There is a map ${as} here: give another name, or tick the box.` : sentence(e)));
   }
   progress.value = undefined;
 }

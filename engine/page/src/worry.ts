@@ -11,6 +11,8 @@ export type Known = {
   receivedAt: number;
   /** Why there will be no more news; empty if there may be. */
   over: string;
+  /** Whether news came one after another while it was followed. */
+  moves: boolean;
 };
 
 export const statusWords: Record<Status, string> = {
@@ -28,10 +30,14 @@ export const silentFrom = 15;
 /** For how long nothing has come of a vehicle, s. */
 export function silence(k: Known, now: number): number {
   const since = (now - k.receivedAt) / 1000;
-  // A drive that is replayed has a clock of its own, which says nothing.
+  // A drive that is replayed has a clock of its own, which says nothing; nor does that of
+  // one whose news comes, however old it is.
   const old = k.posterior.ageS;
-  return old >= 0 && old < 86400 ? old + since : since;
+  return old >= 0 && !otherDay(old) && !k.moves ? old + since : since;
 }
+
+/** Whether news of it comes, and is old when it comes. */
+const late = (k: Known) => k.moves && k.posterior.ageS > silentFrom && !otherDay(k.posterior.ageS);
 
 /**
  * Whether the radii say where the vehicle is: they are of one that is not lost, and
@@ -53,7 +59,7 @@ export function worry(k: Known, now: number): number {
     if (p.lostAlarm) return 6;
     if (p.status === Status.CONTRADICTED) return 5;
     if (p.status === Status.OFF_MAP) return 4;
-    if (silence(k, now) > silentFrom) return 3;
+    if (silence(k, now) > silentFrom || late(k)) return 3;
     if (p.status !== Status.LOCATED) return 2;
     return 1;
   })();
@@ -127,9 +133,12 @@ export function silenceWords(k: Known, now: number): string {
   return !k.over && quiet > silentFrom ? `Silent for ${duration(quiet)}.` : "";
 }
 
+/** Whether what is so old, s, is of another day: a recording, or by a clock that is wrong. */
+export const otherDay = (ageS: number) => Math.abs(ageS) >= 86400;
+
 /** What is to be said of a clock by which something is so old, s; empty if nothing is. */
 export function clockWords(ageS: number, time: Stamp): string {
-  if (Math.abs(ageS) >= 86400) return `Its times are of ${utcTime(time).slice(0, 10)}: a recording, or a clock that is wrong.`;
+  if (otherDay(ageS)) return `Its times are of ${utcTime(time).slice(0, 10)}: a recording, or a clock that is wrong.`;
   return ageS < -5 ? `Its clock is ${duration(ageS)} ahead of the server's.` : "";
 }
 
@@ -138,7 +147,9 @@ export function remarks(k: Known): string {
   if (k.over) return k.over;
   const out: string[] = [];
   if (!k.posterior.lostAlarm && !radiiHold(k.posterior)) out.push(`That it is lost is ${percent(k.posterior.lost)} probable.`);
-  const clock = clockWords(k.posterior.ageS, k.posterior.time!);
+  const p = k.posterior;
+  const clock = otherDay(p.ageS) ? `Its times are of ${utcTime(p.time!).slice(0, 10)}.` : clockWords(p.ageS, p.time!);
   if (clock) out.push(clock);
+  if (late(k)) out.push(`Its news is ${duration(p.ageS)} old when it comes: it is delayed, or its clock is behind the server's.`);
   return out.join(" ");
 }
