@@ -42,13 +42,44 @@ const (
 // logarithm.
 const massStep = 1.0 / 16
 
-// massByte is the byte for a mass, given the heaviest one's.
-func massByte(mass, peak float64) byte {
-	if !(mass > 0) {
-		return 0
+// least[b] is the least share of the heaviest mass that has the byte b: half a step below the
+// middle. bytesFrom has the byte of shares from 1 down to the least that has one, at each 16th
+// of a power of two, so that a logarithm is not taken a million times.
+var (
+	leastShare [257]float64
+	bytesFrom  [24 * 16]byte
+)
+
+func init() {
+	for b := range leastShare {
+		leastShare[b] = kernel.Exp((float64(b) - 255.5) * massStep)
 	}
-	b := 255 + math.Round(kernel.Log(mass/peak)/massStep)
-	return byte(min(max(b, 0), 255))
+	leastShare[0], leastShare[256] = 0, math.Inf(1)
+	for i := range bytesFrom {
+		share := math.Ldexp(1+float64(i%16)/16, i/16-len(bytesFrom)/16)
+		for leastShare[int(bytesFrom[i])+1] <= share {
+			bytesFrom[i]++
+		}
+	}
+}
+
+// massByte is the byte for a mass, given the heaviest one's: 255 plus the logarithm of its share
+// in steps, rounded; 0 for less, for nothing and for NaN.
+func massByte(mass, peak float64) byte {
+	share := mass / peak
+	switch {
+	case !(share >= leastShare[1]):
+		return 0
+	case share >= leastShare[255]:
+		return 255
+	}
+	// Exponent and four bits of the mantissa, from those of 2^-24 on.
+	i := int(math.Float64bits(share)>>48) - (1023-len(bytesFrom)/16)<<4
+	b := int(bytesFrom[i])
+	for share >= leastShare[b+1] {
+		b++
+	}
+	return byte(b)
 }
 
 // of makes a picture of a belief.
@@ -62,7 +93,8 @@ func (pic picture) of(cloud *filter.Cloud, space filter.Space, level int, l filt
 // grid makes the picture of a belief on a plane. Cells are put together by
 // twos, fours and so on each way, until their rectangle is small enough.
 func (pic picture) grid(c *filter.Cloud, frame geo.Frame, l filter.Lattice) *leadlinev1.Belief {
-	cell := func(v, origin float64) int { return int(math.Floor((v-origin)/l.SpacingM + 0.5)) }
+	perM := 1 / l.SpacingM
+	cell := func(v, origin float64) int { return int(math.Floor(float64((v-origin)*perM) + 0.5)) }
 	// What is this light cannot be told even if a cell holds a hundred of it;
 	// it must not widen the rectangle.
 	least := 1e-9 * slices.Max(c.Mass)
@@ -78,9 +110,9 @@ func (pic picture) grid(c *filter.Cloud, frame geo.Frame, l filter.Lattice) *lea
 		}
 		west, east, south, north = min(west, col), max(east, col), min(south, row), max(north, row)
 	}
-	by := 1
+	by, halvings := 1, 0
 	for (floorDiv(east, by)-floorDiv(west, by)+1)*(floorDiv(north, by)-floorDiv(south, by)+1) > pic.gridCells {
-		by *= 2
+		by, halvings = 2*by, halvings+1
 	}
 	west, east, south, north = floorDiv(west, by), floorDiv(east, by), floorDiv(south, by), floorDiv(north, by)
 	columns := east - west + 1
@@ -91,7 +123,7 @@ func (pic picture) grid(c *filter.Cloud, frame geo.Frame, l filter.Lattice) *lea
 			out.Rest += m
 			continue
 		}
-		col, row := floorDiv(cell(c.East[i], l.Origin.E), by)-west, floorDiv(cell(c.North[i], l.Origin.N), by)-south
+		col, row := cell(c.East[i], l.Origin.E)>>halvings-west, cell(c.North[i], l.Origin.N)>>halvings-south // rounded down
 		mass[row*columns+col] += m
 	}
 	out.PeakMass = slices.Max(mass)

@@ -5,6 +5,7 @@ import (
 	"encoding/binary"
 	"fmt"
 	"math"
+	"time"
 
 	"leadline/engine/filter"
 	"leadline/engine/geo"
@@ -33,7 +34,20 @@ type extra struct {
 // answerer adds to the latest posterior of a session; on its owner's goroutine.
 type answerer interface {
 	extra(p *summary.Posterior, w want) (*extra, error)
+	// wait is for how long what is wanted is not to be added, since what was added before took
+	// long: watching must not hold up the vehicle.
+	wait(p *summary.Posterior, w want) time.Duration
+	// charge says that adding took so long.
+	charge(took time.Duration)
 }
+
+// Of an owner's time at most a fifth goes into pictures of its belief: after one that took so
+// long, whoever wants the next waits for four times that, and all who wait get the same one.
+// What takes less than a millisecond, a hundredth of the time at ten a second, is free.
+const (
+	pictureRest = 4
+	pictureFree = time.Millisecond
+)
 
 // extras is an owner's answerer. It answers the same question about one
 // posterior once.
@@ -47,6 +61,21 @@ type extras struct {
 	regions map[float64]*leadlinev1.Region
 	beliefs map[picture]*leadlinev1.Belief
 	cloud   filter.Cloud
+
+	due time.Time // before which no picture is made
+}
+
+func (x *extras) wait(p *summary.Posterior, w want) time.Duration {
+	if w.belief == nil || x.of == p && x.beliefs[*w.belief] != nil {
+		return 0
+	}
+	return max(0, time.Until(x.due))
+}
+
+func (x *extras) charge(took time.Duration) {
+	if took >= pictureFree {
+		x.due = time.Now().Add(pictureRest * took)
+	}
 }
 
 func newExtras(session Session, space filter.Space) *extras {

@@ -89,6 +89,9 @@ func (f *follower) offer(n *bulletin, now time.Time, latest bool) {
 	case asking && (len(s.queue) > 0 || f.reader == nil):
 		s.stale++
 	case asking:
+		if s.asked && !f.leavesOutByWish() {
+			s.skipped++ // the one that it was asked for
+		}
 		s.asked = true
 	default:
 		f.push(s, n, now)

@@ -41,6 +41,7 @@ type subject struct {
 	latest         *bulletin // nil before the first
 	end            *leadlinev1.Farewell
 	gone           bool // the server no longer knows it
+	waits          bool // somebody has to wait for a picture, and will be seen to
 }
 
 // bulletin is a posterior as it is told; what it points to no longer changes.
@@ -108,7 +109,7 @@ func (h *hub) told(sub *subject, ps []*summary.Posterior, withdrawn []sensor.Tim
 	asked := slices.ContainsFunc(followers, func(f *follower) bool { return f.asks(sub) })
 	h.mu.Unlock()
 	if asked {
-		h.present(sub, a)
+		h.present(sub, a, false)
 	}
 }
 
@@ -121,7 +122,7 @@ func (h *hub) farewell(sub *subject, fw *leadlinev1.Farewell, a answerer) {
 			f.hurry(sub)
 		}
 		h.mu.Unlock()
-		h.present(sub, a)
+		h.present(sub, a, true)
 	}
 	h.mu.Lock()
 	defer h.mu.Unlock()
@@ -188,8 +189,8 @@ func (h *hub) erase(sub *subject) {
 
 // present adds what followers ask for beside the latest posterior: on the
 // owner's goroutine, since it reads the session, and once for all who ask the
-// same.
-func (h *hub) present(sub *subject, a answerer) {
+// same. Who has to wait, unless it is the last, goes on asking.
+func (h *hub) present(sub *subject, a answerer, last bool) {
 	type asker struct {
 		f    *follower
 		want want
@@ -197,14 +198,24 @@ func (h *hub) present(sub *subject, a answerer) {
 	h.mu.Lock()
 	n := sub.latest
 	var askers []asker
+	var later time.Duration
 	for _, f := range h.followers(sub.vehicle) {
 		switch {
 		case sub.gone || !f.asks(sub):
 		case n == nil:
 			f.dismiss(sub)
 		default:
-			askers = append(askers, asker{f, f.wants(sub)})
+			w := f.wants(sub)
+			if d := a.wait(n.p, w); d > 0 && !last {
+				later = d
+				continue
+			}
+			askers = append(askers, asker{f, w})
 		}
+	}
+	if later > 0 && !sub.waits {
+		sub.waits = true
+		time.AfterFunc(later, func() { h.waited(sub) })
 	}
 	h.mu.Unlock()
 	if len(askers) == 0 {
@@ -212,9 +223,11 @@ func (h *hub) present(sub *subject, a answerer) {
 	}
 	answers := make([]*extra, len(askers))
 	errs := make([]error, len(askers))
+	began := time.Now()
 	for i, k := range askers {
 		answers[i], errs[i] = a.extra(n.p, k.want)
 	}
+	a.charge(time.Since(began))
 	h.mu.Lock()
 	defer h.mu.Unlock()
 	now := h.now()
@@ -224,6 +237,17 @@ func (h *hub) present(sub *subject, a answerer) {
 			continue
 		}
 		k.f.deliver(&bulletin{of: sub, p: n.p, malformed: n.malformed, extra: answers[i]}, now)
+	}
+}
+
+// waited has the owner look at those again who had to wait.
+func (h *hub) waited(sub *subject) {
+	h.mu.Lock()
+	defer h.mu.Unlock()
+	sub.waits = false
+	select {
+	case sub.poke <- struct{}{}:
+	default: // it has been asked
 	}
 }
 

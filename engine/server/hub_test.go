@@ -24,6 +24,8 @@ type fleet struct {
 	said     map[string]int                            // posteriors, by vehicle
 	inside   float64                                   // of what is said: the probability of every area
 	answered int
+	waits    time.Duration // for whoever wants something
+	charged  int
 	busy     bool // less is to be told
 }
 
@@ -42,6 +44,10 @@ func (fl *fleet) extra(p *summary.Posterior, w want) (*extra, error) {
 	}
 	return x, nil
 }
+
+// wait and charge: what is wanted costs nothing, unless a test says so.
+func (fl *fleet) wait(*summary.Posterior, want) time.Duration { return fl.waits }
+func (fl *fleet) charge(time.Duration)                        { fl.charged++ }
 
 // open begins a drive.
 func (fl *fleet) open(vehicle string) *subject {
@@ -73,7 +79,7 @@ func (fl *fleet) poked() (any bool) {
 	for _, sub := range fl.subjects {
 		select {
 		case <-sub.poke:
-			fl.present(sub, fl)
+			fl.present(sub, fl, false)
 			any = true
 		default:
 		}

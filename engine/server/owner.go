@@ -170,7 +170,7 @@ func (o *owner) run() {
 		case f := <-o.asks:
 			f()
 		case <-o.subject.poke:
-			o.srv.hub.present(o.subject, o.extras)
+			o.srv.hub.present(o.subject, o.extras, false)
 		case w := <-in:
 			o.work(w)
 		case out <- next:
