@@ -120,6 +120,7 @@ func TestBadInput(t *testing.T) {
 		"no area file":      {[]string{"where", "van", "--area", filepath.Join(dir, "none.json")}, []string{"--area", "none.json", "check the path"}},
 		"an area of points": {[]string{"where", "van", "--area", file("point.json", `{"type":"Point","coordinates":[1,2]}`)}, []string{"point.json", "Point", "Polygon"}},
 		"a demo's roads":    {[]string{"demo", "--roads", filepath.Join(dir, "none.json"), "--out", dir}, []string{"--roads", "none.json"}},
+		"a demo that stays": {[]string{"demo", "--stay", "--json"}, []string{"--stay", "--json", "one of them"}},
 		"two demos":         {[]string{"demo", "--andorra", "--roads", ok}, []string{"--andorra", "--roads", "one of them"}},
 		"turns of a scene":  {[]string{"demo", "--turns", "3"}, []string{"--turns", "--andorra"}},
 	} {

@@ -23,6 +23,7 @@ type demoOptions struct {
 	seed       uint64
 	turns      int
 	asJSON     bool
+	stay       string // address at which it goes on
 }
 
 func demoCommand() *cobra.Command {
@@ -54,6 +55,8 @@ replay differ.`,
 	f.StringVar(&o.roads, "roads", "", "drive over this GeoJSON or OpenStreetMap file")
 	f.IntVar(&o.turns, "turns", 12, "turns of 45° or more that the drive over --andorra or --roads has")
 	f.BoolVar(&o.asJSON, "json", false, "print what came out as JSON")
+	f.StringVar(&o.stay, "stay", "", "go on afterwards: a server at this address (alone: "+defaultAddress+") has a page on which everything moves, until control-C")
+	f.Lookup("stay").NoOptDefVal = defaultAddress
 	return c
 }
 
@@ -89,6 +92,14 @@ const (
 )
 
 func demo(c *cobra.Command, o *demoOptions) error {
+	if o.stay != "" {
+		if o.asJSON {
+			return errors.New("--stay goes on until it is ended, and --json says what came out: give one of them")
+		}
+		if err := checkAddress("--stay", o.stay); err != nil {
+			return err
+		}
+	}
 	list, err := o.scenes(c)
 	if err != nil {
 		return err
@@ -120,7 +131,10 @@ func demo(c *cobra.Command, o *demoOptions) error {
 	if err := r.serve(); err != nil {
 		return err
 	}
-	return r.end()
+	if err := r.end(); err != nil || o.stay == "" {
+		return err
+	}
+	return r.stay(o.stay)
 }
 
 // scene writes a scene's files, compiles its map, and replays its drive.

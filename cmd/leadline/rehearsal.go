@@ -6,7 +6,6 @@ import (
 	"errors"
 	"fmt"
 	"io"
-	"log/slog"
 	"path/filepath"
 	"strings"
 	"time"
@@ -185,24 +184,16 @@ func (r *rehearsal) serveArgs() []string {
 			args = append(args, "--suite", s.Suite)
 		}
 	}
+	if r.Traffic != nil {
+		args = append(args, "--suite", r.Traffic.Suite)
+	}
 	return args
 }
 
 // serve feeds each drive to a server and compares its posteriors with those of
 // the replay.
 func (r *rehearsal) serve() (err error) {
-	var o serveOptions
-	c := o.command()
-	root := &cobra.Command{}
-	root.AddCommand(c)
-	takeSettings(root)
-	if err := c.ParseFlags(append(r.serveArgs()[1:], "--listen", "127.0.0.1:0")); err != nil {
-		return err
-	}
-	if err := configure(c); err != nil {
-		return err
-	}
-	srv, err := o.start(slog.New(slog.DiscardHandler))
+	srv, err := r.start("127.0.0.1:0")
 	if err != nil {
 		return err
 	}
