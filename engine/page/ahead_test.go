@@ -83,7 +83,7 @@ func TestAhead(t *testing.T) {
 	}
 	p.click("document.querySelector('#weak button')")
 	p.audit("ahead")
-	p.shoot("ahead-light")
+	p.looks("ahead")
 
 	// The same by keyboard: a route of two points.
 	p.tabTo("[...document.querySelectorAll('button')].find(e => e.innerText === 'Draw the route')")
@@ -97,6 +97,6 @@ func TestAhead(t *testing.T) {
 	p.do("Emulation.setEmulatedMedia", map[string]any{"features": []map[string]string{{"name": "prefers-color-scheme", "value": "dark"}}}, nil)
 	p.resize(390, 844)
 	p.await("a narrow map", "document.querySelector('.map').clientWidth < 400")
-	p.shoot("ahead-narrow-dark")
+	p.shoot("ahead-drawn-narrow-dark")
 	p.clean(r.origin)
 }

@@ -377,6 +377,23 @@ func (p *tab) shoot(name string) {
 	}
 }
 
+// looks takes four pictures of the page: in a wide window and a narrow one, light and dark. It
+// leaves it wide and dark.
+func (p *tab) looks(name string) {
+	p.t.Helper()
+	for _, scheme := range []string{"light", "dark"} {
+		p.do("Emulation.setEmulatedMedia", map[string]any{"features": []map[string]string{{"name": "prefers-color-scheme", "value": scheme}}}, nil)
+		for _, size := range []struct {
+			name          string
+			width, height int
+		}{{"narrow", 390, 844}, {"wide", 1440, 900}} {
+			p.resize(size.width, size.height)
+			p.await("the page has its size and light", fmt.Sprintf("innerWidth === %d && document.documentElement.dataset.lightness === %q && new Promise(done => requestAnimationFrame(() => requestAnimationFrame(() => done(true))))", size.width, scheme))
+			p.shoot(name + "-" + size.name + "-" + scheme)
+		}
+	}
+}
+
 // clean proves that the page complained of nothing, but for what has these
 // words, and asked nobody but its own server.
 func (p *tab) clean(origin string, but ...string) {

@@ -25,11 +25,21 @@ func TestNow(t *testing.T) {
 	p.await("three rows", "document.querySelectorAll('a.row').length === 3")
 	t.Logf("three rows after %v", time.Since(began))
 	// A row that is not drawn yet (content-visibility) has no innerText.
-	p.await("a recording is said to be one", "document.querySelector('#row-van-anywhere .say')?.textContent.includes('Its times are of 2026-01-01.')")
-	p.says(".list .hint", "it is a recording, or a clock is wrong")
+	p.await("a recording is said to be one", "document.querySelector('#row-van-anywhere .say')?.textContent.includes('Its times are of 2026‑01‑01.')")
+	p.says(".list .hint", "a recording, or a wrong clock")
 	p.await("the map", "document.querySelector('.legend')")
 	p.await("figures over time", "document.querySelectorAll('.plot canvas').length === 3")
 	p.shoot("now-light")
+	p.click("document.getElementById('row-van')")
+	p.says("main .side h2", "van ")
+	p.await("the van's figures", "document.querySelector('.plot [role=img]')")
+	// Each update changes what a figure says.
+	p.await("five updates a second", `new Promise(done => {
+		let n = 0;
+		const seen = new MutationObserver(all => { if (all.some(m => m.target.closest('.plot'))) n++; });
+		seen.observe(document.querySelector('.side'), {subtree: true, attributes: true, attributeFilter: ['aria-label']});
+		setTimeout(() => { seen.disconnect(); done(n >= 10); }, 2000);
+	})`)
 	p.clean(r.origin)
 	p.click("document.getElementById('row-craft')")
 	p.says("main .side h2", "craft")

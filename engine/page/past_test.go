@@ -121,7 +121,7 @@ func TestPastRuns(t *testing.T) {
 	}
 	p.await("the map", "document.querySelector('.legend')?.innerText.includes('truth')")
 	p.audit("past runs")
-	p.shoot("past-light")
+	p.looks("past")
 	worst("the first", 199)
 
 	// By keyboard: the drive in place of the first, and through its time.
@@ -149,7 +149,7 @@ func TestPastRuns(t *testing.T) {
 	p.says("#past-figures", "80\u00a0m")
 	p.resize(390, 844)
 	p.do("Emulation.setEmulatedMedia", map[string]any{"features": []map[string]string{{"name": "prefers-color-scheme", "value": "dark"}}}, nil)
-	p.shoot("past-narrow-dark")
+	p.shoot("past-alarm-narrow-dark")
 	p.clean(r.origin)
 }
 

@@ -92,7 +92,7 @@ func TestTasks(t *testing.T) {
 	if _, err := fmt.Sscanf(strings.ReplaceAll(p.text("#protection-answer b"), "\u00a0", " "), "%f m", &metres); err != nil || math.Abs(metres-within.GetProtection().GetRadiusM()) > 0.06*metres {
 		t.Errorf("the page says %q, the server has %v", p.text("#protection-answer"), within.GetProtection())
 	}
-	p.shoot("chances-dark")
+	p.looks("chances")
 	p.audit("chances, dark")
 
 	// A sighting, by keyboard: a sure one elsewhere, which is impossible.
@@ -114,7 +114,11 @@ func TestTasks(t *testing.T) {
 	p.audit("alarms, dark")
 	p.click("[...document.querySelectorAll('button')].find(e => e.innerText === 'I have seen it')")
 	p.says("tbody", "open, seen")
-	p.shoot("alarms-dark")
+	p.looks("alarms")
+	// The other one, by keyboard.
+	p.tabTo("[...document.querySelectorAll('tbody button')].find(e => e.innerText === 'I have seen it')")
+	p.press("Enter")
+	p.await("both are seen", "document.querySelectorAll('tbody tr.seen').length === 2")
 	st, err := r.calls.Follow(t.Context(), &leadlinev1.FollowRequest{Alarms: true})
 	if err != nil {
 		t.Fatal(err)
@@ -138,12 +142,11 @@ func TestTasks(t *testing.T) {
 	p.click("[...document.querySelectorAll('button')].find(e => e.innerText === 'Check it' && e.ariaLabel.includes('quillmere'))")
 	p.says(".cards", "strongly connected")
 	p.audit("maps, dark")
-	p.shoot("maps-dark")
+	p.looks("server")
 	p.click("document.querySelector('nav a[href^=\"#now\"]')")
 	p.says("main .side", "Last measurements")
 	p.audit("now, dark")
-	p.resize(390, 844)
-	p.shoot("now-narrow-dark")
+	p.looks("now")
 	p.clean(r.origin)
 
 	// The server goes, and another comes.

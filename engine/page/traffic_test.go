@@ -122,7 +122,8 @@ func TestTraffic(t *testing.T) {
 	p.click(button)
 	p.await("it is marked", button+".ariaPressed === 'true'")
 	p.audit("traffic")
-	p.shoot("traffic-light")
+	p.looks("traffic")
+	p.do("Emulation.setEmulatedMedia", map[string]any{"features": []map[string]string{{"name": "prefers-color-scheme", "value": "light"}}}, nil)
 	p.tabTo(button)
 	p.press("Enter")
 	p.await("it is not marked", button+".ariaPressed === 'false'")
@@ -177,7 +178,19 @@ func TestTraffic(t *testing.T) {
 	p.click("[...document.querySelectorAll('.buttons button')].find(e => e.innerText === 'Whole map')")
 	p.audit("traffic, narrow and dark")
 	eval[any](p, "scrollTo(0, 0)")
-	p.shoot("traffic-narrow-dark")
+	// Two fingers that part make the scale larger.
+	const bar = "parseFloat(document.querySelector('.legend .bar').innerText) / document.querySelector('.legend .bar').clientWidth"
+	before := eval[float64](p, bar)
+	for i, kind := range []string{"touchStart", "touchMove", "touchMove", "touchEnd"} {
+		points := []map[string]any{}
+		if kind != "touchEnd" {
+			points = append(points, map[string]any{"x": 180 - 20*i, "y": 500, "id": 1}, map[string]any{"x": 220 + 20*i, "y": 500, "id": 2})
+		}
+		p.do("Input.dispatchTouchEvent", map[string]any{"type": kind, "touchPoints": points}, nil)
+	}
+	p.await("a larger scale", fmt.Sprintf("%s < %v", bar, 0.6*before))
+	p.click("[...document.querySelectorAll('.buttons button')].find(e => e.innerText === 'Whole map')")
+	eval[any](p, "scrollTo(0, 0)")
 	eval[any](p, "document.querySelector('#lines').scrollIntoView()")
 	p.shoot("traffic-counts-narrow-dark")
 

@@ -186,7 +186,7 @@ function Inside({ p }: { p: Posterior }) {
 
 function Risk({ p }: { p: Posterior }) {
   const a = answer.value;
-  const protection = a.posterior?.protection ?? p.protection;
+  const protection = (a.posterior?.vehicle === p.vehicle && a.posterior.protection) || p.protection;
   return (
     <section aria-labelledby="risk">
       <h3 id="risk">How far off may it be?</h3>
@@ -239,12 +239,18 @@ function Coordinates({ p }: { p: Posterior }) {
       </div>
       <div class="choices" role="group" aria-label="Copy">
         <Copy words="Copy coordinates" text={() => place(mean, form.value)} />
-        <Copy words="Copy as JSON" text={() => json(answer.value.posterior ?? p)} />
-        <Copy words="Copy as GeoJSON" text={() => geoJSON(answer.value.posterior ?? p)} />
+        <Copy words="Copy as JSON" text={() => json(newest(p))} />
+        <Copy words="Copy as GeoJSON" text={() => geoJSON(newest(p))} />
         <Copy words="Copy the command" text={() => command(p)} />
       </div>
     </section>
   );
+}
+
+/** The answer's posterior, unless it is older than the one that is shown, or another vehicle's. */
+function newest(p: Posterior): Posterior {
+  const a = answer.value.posterior;
+  return a?.vehicle === p.vehicle && (a.counts?.accepted ?? 0n) >= (p.counts?.accepted ?? 0n) ? a : p;
 }
 
 /** The mean, the places and the area that was asked about, as features. */
@@ -258,7 +264,7 @@ function geoJSON(p: Posterior): string {
       features: [
         feature(point(p.mean as LonLat), { what: "mean", vehicle: p.vehicle, time: new Date(Number(p.time!.seconds) * 1000 + p.time!.nanos / 1e6).toISOString(), radius95_m: p.radii?.radius95M }),
         ...p.modes.map((m) => feature(point(m.mean as LonLat), { what: "place", vehicle: p.vehicle, probability: m.mass, road: m.edges[0]?.name })),
-        ...(ring ? [feature({ type: "Polygon", coordinates: [[...ring, ring[0]].map((q) => [q.lon, q.lat])] }, { what: "asked area", probability: answer.value.inside })] : []),
+        ...(ring ? [feature({ type: "Polygon", coordinates: [[...ring, ring[0]].map((q) => [q.lon, q.lat])] }, { what: "asked area", probability: answer.value.of === question(ring) ? answer.value.inside : undefined })] : []),
       ],
     },
     null,

@@ -89,8 +89,9 @@ function listen<M>(of: Source<M>, on: Listener<M>): () => void {
           while (token.value === asked && !stopped) await sleep(250);
           continue;
         }
-        on.link({ state: "away", why: sentence(e) });
-        if (noteIdentity(e)) {
+        const unknown = noteIdentity(e);
+        on.link({ state: "away", why: unknown ? "Your identity is not taken." : sentence(e) });
+        if (unknown) {
           for (let i = 0; i < 40 && token.value === asked && !stopped; i++) await sleep(250);
           continue;
         }

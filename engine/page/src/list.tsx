@@ -84,7 +84,7 @@ export function List() {
           <span>less sure</span>
         </p>
       )}
-      {otherDays && <p class="hint">Where times are of another day, it is a recording, or a clock is wrong.</p>}
+      {otherDays && <p class="hint">Times of another day: a recording, or a wrong clock.</p>}
       {names.length === 0 ? (
         <p class="empty">
           {waits} {link.value.state === "live" && <code>leadline feed DRIVE --to {location.host}</code>}

@@ -28,7 +28,7 @@ function Connection() {
   const l = link.value;
   const age = heardAt.value ? (clock.value - heardAt.value) / 1000 : 0;
   const old = heardAt.value ? ` What is shown is ${duration(age)} old.` : "";
-  if (l.state === "away") return <p class="connection bad" role="status">{l.why} Trying again.{old}</p>;
+  if (l.state === "away") return <p class="connection bad" role="status">{l.why} {identityTrouble.value ? "A token is asked for." : "Trying again."}{old}</p>;
   if (l.state === "denied") return <p class="connection" role="status">Positions are not shown.</p>;
   if (l.state === "connecting") return <p class="connection" role="status">Connecting.</p>;
   return <p class={`connection ${age > 5 ? "" : "good"}`} role="status">{age > 5 ? `Connected; no news for ${duration(age - (age % 5))}.` : "Live."}</p>;

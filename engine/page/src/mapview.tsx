@@ -189,25 +189,48 @@ export function MapView() {
     e.preventDefault();
   };
 
-  let from: { x: number; y: number; moved: boolean } | undefined;
+  const hand = useRef<{ from?: { x: number; y: number; moved: boolean }; fingers: Map<number, { x: number; y: number }> }>({ fingers: new Map() }).current;
   const down = (e: PointerEvent) => {
-    from = { x: e.clientX, y: e.clientY, moved: false };
+    hand.from = { x: e.clientX, y: e.clientY, moved: false };
+    hand.fingers.set(e.pointerId, { x: e.clientX, y: e.clientY });
     (e.currentTarget as Element).setPointerCapture(e.pointerId);
   };
   const move = (e: PointerEvent) => {
+    const { from, fingers } = hand;
     if (!from || e.buttons === 0) return;
+    if (fingers.size > 1 && fingers.has(e.pointerId)) {
+      // Two fingers: the scale goes with their distance.
+      const [other] = [...fingers].filter(([id]) => id !== e.pointerId).map(([, p]) => p);
+      const far = (p: { x: number; y: number }) => Math.max(Math.hypot(p.x - other.x, p.y - other.y), 10);
+      const r = box.current!.getBoundingClientRect();
+      zoom(far(fingers.get(e.pointerId)!) / far({ x: e.clientX, y: e.clientY }), (e.clientX + other.x) / 2 - r.left, (e.clientY + other.y) / 2 - r.top);
+      fingers.set(e.pointerId, { x: e.clientX, y: e.clientY });
+      hand.from = { x: e.clientX, y: e.clientY, moved: true };
+      return;
+    }
     const [dx, dy] = [e.clientX - from.x, e.clientY - from.y];
     if (!from.moved && Math.hypot(dx, dy) < 5) return;
     pan(-dx, -dy);
-    from = { x: e.clientX, y: e.clientY, moved: true };
+    hand.from = { x: e.clientX, y: e.clientY, moved: true };
   };
   const up = (e: PointerEvent) => {
     const g = under.peek();
+    const { from, fingers } = hand;
+    fingers.delete(e.pointerId);
+    if (fingers.size > 0) {
+      const [rest] = fingers.values();
+      hand.from = { ...rest, moved: true }; // the finger that stays goes on from where it is
+      return;
+    }
     if (from && !from.moved && g) {
       const r = box.current!.getBoundingClientRect();
       point(g.frame.inverse(toEN(view.peek(), e.clientX - r.left, e.clientY - r.top)));
     }
-    from = undefined;
+    hand.from = undefined;
+  };
+  const lost = (e: PointerEvent) => {
+    hand.fingers.delete(e.pointerId);
+    hand.from = undefined;
   };
 
   useEffect(() => {
@@ -239,6 +262,7 @@ export function MapView() {
         onPointerDown={down}
         onPointerMove={move}
         onPointerUp={up}
+        onPointerCancel={lost}
         onDblClick={close}
       >
         <canvas ref={low} aria-hidden="true" />

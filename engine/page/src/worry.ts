@@ -148,7 +148,7 @@ export function remarks(k: Known): string {
   const out: string[] = [];
   if (!k.posterior.lostAlarm && !radiiHold(k.posterior)) out.push(`That it is lost is ${percent(k.posterior.lost)} probable.`);
   const p = k.posterior;
-  const clock = otherDay(p.ageS) ? `Its times are of ${utcTime(p.time!).slice(0, 10)}.` : clockWords(p.ageS, p.time!);
+  const clock = otherDay(p.ageS) ? `Its times are of ${utcTime(p.time!).slice(0, 10).replaceAll("-", "\u2011")}.` : clockWords(p.ageS, p.time!);
   if (clock) out.push(clock);
   if (late(k)) out.push(`Its news is ${duration(p.ageS)} old when it comes: it is delayed, or its clock is behind the server's.`);
   return out.join(" ");
