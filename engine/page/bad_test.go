@@ -14,6 +14,7 @@ import (
 // that a token which ends under an open page is one, too: nothing that was shown is lost, and it
 // goes on with another token.
 func TestClocksAndTokens(t *testing.T) {
+	t.Parallel() // it waits more than it works
 	b := startBrowser(t)
 	w, err := invented()
 	if err != nil {

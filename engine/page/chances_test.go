@@ -35,6 +35,7 @@ func (p *tab) copied(words string, press func(element string), refuse bool) stri
 // and by keyboard, enters a sighting in one, and compares with the server what is copied: the
 // area's probability, a posterior, coordinates in each form. A satellite fix is marked; units change.
 func TestChances(t *testing.T) {
+	t.Parallel() // it waits more than it works
 	b := startBrowser(t)
 	r := serve(t, "127.0.0.1:0")
 	w, err := invented()

@@ -60,6 +60,7 @@ func tableOf(t *testing.T, dir, name string, from geo.LonLat, worstS int) string
 // and shows two side by side at one time, that a drive which has ended is shown as
 // the server keeps it, and that what is no table is a sentence.
 func TestPastRuns(t *testing.T) {
+	t.Parallel() // it waits more than it works
 	b := startBrowser(t)
 	w, err := invented()
 	if err != nil {
@@ -157,6 +158,7 @@ func TestPastRuns(t *testing.T) {
 // killed and started anew on its journal, goes through it by keyboard, and is told when it is not
 // kept any more.
 func TestOlderDrives(t *testing.T) {
+	t.Parallel() // it waits more than it works
 	b := startBrowser(t)
 	w, err := invented()
 	if err != nil {

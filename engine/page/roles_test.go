@@ -45,6 +45,7 @@ func (p *tab) show(token string) {
 // server then holds: by nobody without the role, by nobody who says no, of a drive that is watched.
 // What the watcher has shown expires meanwhile.
 func TestEnding(t *testing.T) {
+	t.Parallel() // it waits more than it works
 	b := startBrowser(t)
 	access, token := issuing(t)
 	r := serve(t, "127.0.0.1:0", func(c *server.Config) { c.Access = access })

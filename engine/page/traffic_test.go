@@ -42,6 +42,7 @@ func (p *tab) heardRows() (rows []heardRow) {
 // and by keyboard vehicles, counts, flows and doubts; that it moves as bearings come, says how old
 // it is when they stop, when the server goes and when the drive ends; that markup in names is text.
 func TestTraffic(t *testing.T) {
+	t.Parallel() // it waits more than it works
 	b := startBrowser(t)
 	scene, err := scenes.Traffic(1)
 	if err != nil {

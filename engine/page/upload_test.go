@@ -28,6 +28,7 @@ func (p *tab) choose(input string, paths ...string) {
 // server then holds; what is wrong with a file, or with who sends it, is a sentence each and leaves
 // nothing behind.
 func TestUploading(t *testing.T) {
+	t.Parallel() // it waits more than it works
 	b := startBrowser(t)
 	w, err := invented()
 	if err != nil {

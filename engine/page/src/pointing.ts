@@ -1,5 +1,5 @@
 // What the person points at on the map: a place with a radius, an area, or a route.
-import { signal } from "@preact/signals";
+import { batch, signal } from "@preact/signals";
 import type { LonLat } from "./project";
 
 export const tool = signal<"none" | "place" | "area" | "route">("none");
@@ -28,8 +28,10 @@ export function point(p: LonLat) {
 }
 
 export function forgetArea() {
-  corners.value = [];
-  closed.value = false;
+  batch(() => {
+    corners.value = [];
+    closed.value = false;
+  });
 }
 
 /** Ends the outline of an area, if it is one. */
