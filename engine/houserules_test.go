@@ -53,6 +53,7 @@ var mayImport = map[string][]string{
 	"engine/server/operate":  {},
 	"engine/server/share":    {},
 	"engine/client":          {api},
+	"engine/client/outbox":   {api, "engine/client"},
 	"engine/logfile":         {"engine/sensor", "engine/geo"},
 	"engine/livelog":         {"engine/logfile"},
 	"engine/study/...": {
@@ -102,7 +103,7 @@ var mayImport = map[string][]string{
 var notKernel = []string{"fixtures/sim", "fixtures/heights", "fixtures/reference", "fixtures/outside", "fixtures/outside/fetch", "tools/..."}
 
 // knowProtobuf may import the API and the protobuf and gRPC libraries.
-var knowProtobuf = []string{api, "engine/server", "engine/server/web", "engine/server/operate", "engine/client", "engine/page", "engine/wire", "engine/drivefile", "cmd/leadline", "fixtures/bench", "fixtures/survive"}
+var knowProtobuf = []string{api, "engine/server", "engine/server/web", "engine/server/operate", "engine/client", "engine/client/outbox", "engine/page", "engine/wire", "engine/drivefile", "cmd/leadline", "fixtures/bench", "fixtures/survive"}
 
 // wireFormat is not our API: OpenStreetMap's PBF files are coded in protobuf's
 // wire format, and its reader takes them apart itself.

@@ -48,9 +48,19 @@ source:
   udp:HOST:PORT, udp::PORT         datagrams that are listened for
 
 A source that is lost is opened again. SIGINT or SIGTERM ends the feed: what was
-heard is sent, and the drive is ended. A second signal stops at once.`,
-		Args: cobra.ExactArgs(1),
+heard is sent, and the drive is ended. A second signal stops at once.
+
+With --keep what is heard goes into a file first: nothing of it is lost while the
+server or the network is away, or if this program ends. Without a source, --keep
+sends what such a file holds.`,
+		Args: cobra.MaximumNArgs(1),
 		RunE: func(c *cobra.Command, args []string) error {
+			if len(args) == 0 {
+				if o.keep == "" {
+					return errors.New("there is nothing to feed: give a drive file, a source, or --keep with a file of an earlier feed")
+				}
+				return o.sendKept(c)
+			}
 			if err := knownSource(args[0]); err != nil {
 				return err
 			}

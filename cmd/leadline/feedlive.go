@@ -12,6 +12,7 @@ import (
 	"time"
 
 	"github.com/spf13/cobra"
+	"google.golang.org/grpc"
 
 	"leadline/engine/client"
 	"leadline/engine/livelog"
@@ -26,12 +27,13 @@ type liveOptions struct {
 	sentenceOptions
 	drive     string
 	leaveOpen bool
+	outboxOptions
 }
 
 // liveFlags are the flags that only instruments have, recordedFlags those that
 // only a recorded drive has.
 var (
-	liveFlags     = []string{"vehicle", "start", "sentences", "satellites", "variation", "reckon", "drive", "leave-open"}
+	liveFlags     = []string{"vehicle", "start", "sentences", "satellites", "variation", "reckon", "drive", "leave-open", "keep", "keep-mib"}
 	recordedFlags = []string{"speed"}
 )
 
@@ -39,6 +41,7 @@ func (o *liveOptions) flags(c *cobra.Command) {
 	o.sentenceOptions.flags(c)
 	c.Flags().StringVar(&o.drive, "drive", "", "instruments: name of the drive; one that was left open goes on")
 	c.Flags().BoolVar(&o.leaveOpen, "leave-open", false, "instruments: do not end the drive at a signal")
+	o.outboxOptions.flags(c)
 }
 
 // onlyOf names a flag of a list that was given, or "".
@@ -92,14 +95,13 @@ func (o *feedOptions) live(c *cobra.Command, from string) error {
 		return err
 	}
 	var first atomic.Pointer[leadlinev1.Refusal]
-	f, err := client.Open(context.Background(), conn, client.Drive{
+	f, err := o.openSink(errs, conn, client.Drive{
 		Header: wire.FromHeader(header), Name: o.drive, Replace: o.replace, Continue: true, Reply: leadlinev1.Reply_REPLY_NONE,
 		OnRefusal: func(r *leadlinev1.Refusal) { first.CompareAndSwap(nil, r) },
 	})
 	if err != nil {
 		return fmt.Errorf("%s: %w", from, serverError(err, o.address))
 	}
-	o.resumed(errs, f)
 	if a := stream.Addr(); a != nil {
 		fmt.Fprintf(errs, "listening on %s\n", a)
 	}
@@ -116,12 +118,17 @@ func (o *feedOptions) live(c *cobra.Command, from string) error {
 	}
 	untimed := n.End()
 	o.told(errs, n.Tally())
+	return errors.Join(o.end(c, f, from, header.Vehicle, &first), untimed)
+}
+
+// end ends a feed of a drive, or leaves the drive open.
+func (o *feedOptions) end(c *cobra.Command, f sink, from, vehicle string, first *atomic.Pointer[leadlinev1.Refusal]) error {
 	if o.leaveOpen {
 		if err := f.Leave(); err != nil {
 			return fmt.Errorf("%s: %w", from, o.broken(err, f.Name()))
 		}
 		fmt.Fprintf(c.OutOrStdout(), "%s is left open: go on with --drive %s\n", f.Name(), f.Name())
-		return untimed
+		return nil
 	}
 	closed, err := f.Close()
 	if err != nil {
@@ -131,13 +138,40 @@ func (o *feedOptions) live(c *cobra.Command, from string) error {
 	if r := first.Load(); r != nil {
 		refusal = refusalError(r)
 	}
-	return errors.Join(o.conclude(c, from, header.Vehicle, closed, refusal), untimed)
+	return o.conclude(c, from, vehicle, closed, refusal)
+}
+
+// sink is where measurements of instruments go: to a server, or first into a file.
+type sink interface {
+	Name() string
+	Send(m *leadlinev1.SensorMeasurement) error
+	Flush() error
+	Close() (*leadlinev1.Closed, error)
+	Leave() error
+	Abort()
+}
+
+var _, _ sink = (*client.Feed)(nil), (*keptSink)(nil)
+
+func (o *feedOptions) openSink(errs io.Writer, conn *grpc.ClientConn, d client.Drive) (sink, error) {
+	if o.keep != "" {
+		return o.openKept(errs, conn, d, o.address)
+	}
+	f, err := client.Open(context.Background(), conn, d)
+	if err != nil {
+		return nil, err
+	}
+	o.resumed(errs, f)
+	return f, nil
 }
 
 // broken words why a feed ended before the instruments did.
 func (o *feedOptions) broken(err error, drive string) error {
 	if endedElsewhere(err) {
 		return o.failed(err)
+	}
+	if errors.As(err, new(failure)) { // says it itself
+		return err
 	}
 	return sentences(serverError(err, o.address), fmt.Sprintf("The drive was not ended: go on with --drive %s, if the server still has it", drive))
 }
@@ -165,7 +199,7 @@ func (o *feedOptions) told(errs io.Writer, t *logfile.Tally) {
 // Lines are timed by this computer's clock as it was at the first one, and
 // from then on by how much time passed: a clock that is set while the feed
 // runs does not tear the increments apart.
-func pump(n *logfile.NMEA, f *client.Feed, lines <-chan livelog.Line) error {
+func pump(n *logfile.NMEA, f sink, lines <-chan livelog.Line) error {
 	tick := time.NewTicker(flushEvery)
 	defer tick.Stop()
 	var began time.Time

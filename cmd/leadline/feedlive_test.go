@@ -273,6 +273,12 @@ func TestFeedLiveBadInput(t *testing.T) {
 		"speed":                 {[]string{"udp:127.0.0.1:0", "--vehicle", "v", "--speed", "2"}, []string{"--speed", "recorded"}},
 		"a recorded drive's":    {[]string{drive, "--vehicle", "v"}, []string{"--vehicle", "header"}},
 		"a recorded drive's, 2": {[]string{drive, "--leave-open"}, []string{"--leave-open", "recorded"}},
+		"nothing":               {nil, []string{"give a drive file, a source, or --keep"}},
+		"nothing kept":          {[]string{"--keep", filepath.Join(dir, "none"), "--to", nobody}, []string{"none", "no such file"}},
+		"kept, and a flag":      {[]string{"--keep", filepath.Join(dir, "none"), "--map", "m"}, []string{"--map", "says it itself"}},
+		"a drive kept":          {[]string{drive, "--keep", filepath.Join(dir, "none")}, []string{"--keep", "instruments"}},
+		"kept in a drive":       {[]string{"udp:127.0.0.1:0", "--vehicle", "v", "--keep", drive, "--to", nobody}, []string{drive, "no outbox"}},
+		"kept in nothing":       {[]string{"udp:127.0.0.1:0", "--vehicle", "v", "--keep", filepath.Join(dir, "x"), "--keep-mib", "0"}, []string{"--keep-mib", "positive"}},
 		"sentences":             {[]string{"udp:127.0.0.1:0", "--vehicle", "v", "--sentences", filepath.Join(dir, "none.yaml")}, []string{"--sentences", "none.yaml"}},
 		"variation":             {[]string{"udp:127.0.0.1:0", "--vehicle", "v", "--variation", "200"}, []string{"variation", "200"}},
 	} {

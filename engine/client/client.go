@@ -95,7 +95,16 @@ type Drive struct {
 	OnPosterior func(*leadlinev1.Posterior)
 	OnWithdrawn func(*leadlinev1.Withdrawn)
 	OnRefusal   func(*leadlinev1.Refusal)
+
+	// OnLost and OnOpened, if set, are called by a Courier or Carrier: when the server
+	// cannot be fed, with the reason, before each wait for another try, and when it has
+	// opened the drive, again too.
+	OnLost   func(error)
+	OnOpened func()
 }
+
+// defaultBatch is the number of measurements that are sent together unless said.
+const defaultBatch = 64
 
 // Feed is an open drive. One goroutine may use it.
 type Feed struct {
@@ -124,7 +133,7 @@ func Open(ctx context.Context, conn grpc.ClientConnInterface, d Drive) (*Feed, e
 		d.Name = rand.Text()
 	}
 	if d.Batch == 0 {
-		d.Batch = 64
+		d.Batch = defaultBatch
 	}
 	if d.Window == 0 {
 		d.Window = 16
@@ -227,6 +236,20 @@ func (f *Feed) failure() error {
 		return f.endedElsewhere()
 	}
 	return errors.New("client: the feed is closed")
+}
+
+// broken is why the feed has ended, nil while it has not, or if that was with
+// everything that was sent.
+func (f *Feed) broken() error {
+	select {
+	case <-f.done:
+		if f.closed != nil && f.receipts.Load() >= f.sent {
+			return nil
+		}
+		return f.failure()
+	default:
+		return nil
+	}
 }
 
 // Ended is what the server said at the end of the drive, nil as long as it has
