@@ -45,6 +45,8 @@ func TestNow(t *testing.T) {
 	p.says("main .side h2", "craft")
 	p.await("the legend", "document.querySelector('.legend')?.innerText.includes('height')")
 	p.await("figures over time", "document.querySelectorAll('.plot canvas').length === 2")
+	// It ends far within its limit, and is no less one that is located for that.
+	p.await("the craft is located", "document.querySelector('#row-craft.good') && parseFloat(document.querySelector('#row-craft .radius b').innerText) < 50 / 6")
 	p.shoot("now-craft-light")
 	p.clean(r.origin)
 }

@@ -1,4 +1,5 @@
 // The map of the chosen vehicle.
+import { Status } from "../../client/web/leadline/v1/posterior_pb.js";
 import { batch, computed, effect, signal } from "@preact/signals";
 import { useEffect, useRef } from "preact/hooks";
 import { beliefScale, css, decades, ground as groundColour } from "./colour";
@@ -352,7 +353,7 @@ function Legend({ g }: { g: Ground }) {
       {p && (
         <ul>
           <li><i class="sign circle" /> 95 % circle{radiiHold(p) ? "" : ", if not lost"}</li>
-          {p.modes.length > 1 && <li><i class="sign disc" /> places, likeliest first</li>}
+          {p.status !== Status.LOCATED && p.modes.length > 1 && <li><i class="sign disc" /> places, likeliest first</li>}
           {past.value.some((q) => q.located) && <li><i class="sign track" /> track while located</li>}
           {fix.value && <li><i class="sign fix" /> satellite fix</li>}
           {onRoads(p) && p.offMap > 0.01 && <li>{percent(p.offMap)} off the map</li>}

@@ -63,7 +63,7 @@ export function worry(k: Known, now: number): number {
     if (p.status !== Status.LOCATED) return 2;
     return 1;
   })();
-  return grade * 1000 + Math.min(999, 100 + 40 * Math.log2(Math.max(ratio(p), 1 / 8)));
+  return grade * 1000 + Math.min(999, 120 + 40 * Math.log2(Math.max(ratio(p), 1 / 8)));
 }
 
 /** What an alarm is about, in words. */
