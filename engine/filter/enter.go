@@ -30,6 +30,16 @@ type Entry struct {
 	// LateralVar is the variance of a vehicle's distance from the line that it
 	// is on, m², and HeadingVar of its heading about the line's, rad².
 	LateralVar, HeadingVar float64
+	// Among is E[exp(-D²/2L - δ²/2H)], as in Enter, summed over the lines, of a
+	// vehicle that is somewhere among them and faces any way: see AmongLines.
+	Among float64
+}
+
+// AmongLines is that mean for lines of so many metres in all, each direction
+// counted, on an area: integrated across a line it is √(2πL), and the part
+// √(2πH)/2π of the directions face along one.
+func (e Entry) AmongLines(lengthM, areaM2 float64) float64 {
+	return lengthM / areaM2 * math.Sqrt(2*math.Pi*e.LateralVar) * math.Sqrt(e.HeadingVar/(2*math.Pi))
 }
 
 // enterSigmas is how far around a Gaussian lines are looked for, enterMostM the
@@ -51,10 +61,12 @@ const (
 //
 // goes to the place on the line that is nearest to its mean, conditioned on D
 // and δ being 0 with the variances L and H; where lines compete the hazards add
-// up. One wider than enterMostM stays off, until measurements narrow it.
-// on is the share of the whole that b has and off that of l, whose sum does
-// not change; both are returned as they are then. What stays keeps its shape.
-func (l *Loose) Enter(b *Belief, space Nearby, e Entry, on, off float64, w *Workspace) (onAfter, offAfter float64) {
+// up. What stays keeps its shape.
+// Of one wider than enterMostM the part 1 - exp(-Hazard·Among) comes onto lines,
+// too, of which there are too many to follow it: it is astray.
+// on is the share of the whole that b has and off that of l; both are returned as
+// they are then, with what is astray, and the three have the same sum.
+func (l *Loose) Enter(b *Belief, space Nearby, e Entry, on, off float64, w *Workspace) (onAfter, offAfter, astray float64) {
 	k := len(l.Quantities)
 	heading := Index(l.Quantities, Heading)
 	var places []Nearest
@@ -68,6 +80,9 @@ func (l *Loose) Enter(b *Belief, space Nearby, e Entry, on, off float64, w *Work
 		mean := geo.Point{E: g.mean[0], N: g.mean[1]}
 		sigma := math.Sqrt(0.5*(g.cov[0]+g.cov[2]) + math.Sqrt(square(0.5*(g.cov[0]-g.cov[2]))+square(g.cov[1])))
 		if sigma > enterMostM {
+			part := g.mass * (1 - kernel.Exp(-e.Hazard*e.Among))
+			l.Mass[i] -= part
+			astray += part
 			continue // wherever it is: the lines near its mean are none of its own
 		}
 		reach := math.Min(enterSigmas*math.Sqrt(sigma*sigma+e.LateralVar), enterMostM)
@@ -108,16 +123,16 @@ func (l *Loose) Enter(b *Belief, space Nearby, e Entry, on, off float64, w *Work
 		moved += g.mass * part
 		l.Mass[i] -= g.mass * part
 	}
-	if moved == 0 {
-		return on, off
+	if moved == 0 && astray == 0 {
+		return on, off, 0
 	}
-	if moved >= 1 { // by rounding
-		moved = 1
+	left := math.Max(1-moved-astray, 0) // by rounding
+	onAfter, offAfter, astray = on+off*moved, off*left, off*astray
+	if moved > 0 {
+		b.inject(space, &fresh, where, on/onAfter, off/onAfter, w)
 	}
-	onAfter, offAfter = on+off*moved, off*(1-moved)
-	b.inject(space, &fresh, where, on/onAfter, off/onAfter, w)
 	l.Reduce(len(l.Mass))
-	return onAfter, offAfter
+	return onAfter, offAfter, astray
 }
 
 // onLine is a loose Gaussian as one over (along, rest) around the place j of the

@@ -145,6 +145,10 @@ func (s *Session) begin() {
 	s.snaps[0].time = t - 1 // an earlier one may have come
 	s.state.begun = true
 	s.state.time = t
+	if a := &s.state.aside; s.fromAnywhere {
+		a.woke = t + sensor.Time(searchAgainS*1e9)
+		a.searched = a.woke
+	}
 	s.state.posteriorAt = t - sensor.Time((max(hugePosteriorS, s.posteriorS)+1)*1e9) // the first is due
 	s.state.posedAt = s.state.posteriorAt
 	if !s.begunOnce {

@@ -46,10 +46,11 @@ const (
 	leastOn     = 1e-9 // of each hypothesis that there is, so that it can grow again
 	enterSigmaM = 5.0  // about a road: lane, map error, and what the driver cuts off
 	enterRad    = 15 * math.Pi / 180
+	besideM     = 100.0 // from the outermost roads, a vehicle is still among them
 	// quietAfterS is after how long a silence or a stop is longer than those of
 	// traffic (practice).
 	quietAfterS = 60.0
-	// alarmFrom is the probability of being lost that is said aloud.
+	// alarmFrom is the probability of being lost that is said aloud in any case.
 	alarmFrom = 0.5
 	quietMPS  = 0.1
 )
@@ -80,21 +81,24 @@ func (s *Session) setRates() {
 		s.rates.off = 0 // nobody knows where it goes, or how it comes back
 	}
 	s.state.aside.loose = loose
+	s.entry = filter.Entry{LateralVar: enterSigmaM * enterSigmaM, HeadingVar: enterRad * enterRad}
 	if s.rates.lost > 0 || s.rates.moved > 0 {
-		s.areaM2 = s.extent()
+		s.survey()
 	}
 }
 
-// extent is the area of the map's box, m², at least that over which outlying
-// fixes are flat.
-func (s *Session) extent() float64 {
+// survey takes the area of the map's box, m², at least that over which outlying
+// fixes are flat, and how many roads there are within.
+func (s *Session) survey() {
 	level := s.lines.Levels() - 1
 	lines := s.lines.Lines(level)
 	var at filter.Columns
 	n := len(lines.LengthM)
 	chart, along := make([]int32, n), make([]float64, n)
+	lengthM := 0.0
 	for i := range chart {
 		chart[i] = int32(i)
+		lengthM += lines.LengthM[i]
 	}
 	at.Resize(filter.WantPosition, 1, n)
 	s.lines.Sample(&at, chart, along, lines.WidthM[0])
@@ -102,7 +106,9 @@ func (s *Session) extent() float64 {
 	for i := range at.East {
 		box = box.Extend(geo.Point{E: at.East[i], N: at.North[i]})
 	}
-	return math.Max((box.Max.E-box.Min.E)*(box.Max.N-box.Min.N), 1e8)
+	d := box.Max.Sub(box.Min)
+	s.areaM2 = math.Max(d.E*d.N, 1e8)
+	s.entry.Among = s.entry.AmongLines(lengthM, (d.E+2*besideM)*(d.N+2*besideM))
 }
 
 // moveAside moves what is beside the belief by the motion that was gathered and
@@ -150,7 +156,9 @@ func (s *Session) lose(dt float64, moves bool) {
 }
 
 // exchange lets mass leave the roads and come back to them, after each exchangeM
-// travelled, and takes what has gone over the ends of roads.
+// travelled, and takes what has gone over the ends of roads. What leaves a wide
+// belief, and what comes back from a place that is as good as unknown, is on its way
+// where nobody follows it: it is lost.
 func (s *Session) exchange(travelledM float64) {
 	st := &s.state
 	a, v := &st.aside, &s.suite.Vehicle
@@ -165,15 +173,21 @@ func (s *Session) exchange(travelledM float64) {
 	way := a.roadM
 	a.roadM = 0
 	if a.off >= smallShare {
-		e := filter.Entry{Hazard: s.rates.in * way, LateralVar: enterSigmaM * enterSigmaM, HeadingVar: enterRad * enterRad}
-		_, off := a.loose.Enter(st.belief, s.near, e, a.on(), a.off, &s.desk().work)
+		e := s.entry
+		e.Hazard = s.rates.in * way
+		_, off, astray := a.loose.Enter(st.belief, s.near, e, a.on(), a.off, &s.desk().work)
 		a.off = off
+		a.lost += astray
 		s.takeDeparted(lateral)
 	}
-	if st.belief.Cells() < s.wideSize && a.on() > leastOn {
+	switch gain := 1 - kernel.Exp(-s.rates.off*way); {
+	case !(a.on() > leastOn):
+	case st.belief.Cells() < s.wideSize:
 		part := filter.Loose{Quantities: a.loose.Quantities}
 		st.belief.Loosen(&part, s.lines, lateral, mostLoose, &s.desk().work)
-		s.leave(&part, 1-kernel.Exp(-s.rates.off*way))
+		s.leave(&part, gain)
+	case s.entry.Among > 0: // where it leaves them nobody follows
+		a.lost += (a.on() - leastOn) * gain
 	}
 }
 

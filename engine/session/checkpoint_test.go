@@ -132,7 +132,7 @@ func TestFieldsOfCheckpoints(t *testing.T) {
 		v      any
 		fields int
 	}{
-		{Session{}, 52},
+		{Session{}, 54},
 		{state{}, 21},
 		{aside{}, 10},
 		{snapshot{}, 3},

@@ -8,10 +8,12 @@ import (
 	"leadline/engine/sensor"
 )
 
-// When being lost is the likeliest, the whole map is searched: a new belief,
-// seeded anywhere, replays the last minutes of events, and then takes the share of
-// the hypothesis that the vehicle is lost. What it found competes with what was
-// there from then on; evidence decides.
+// When being lost is as likely as what located leaves open (searchFrom), so that
+// nothing can be located, the alarm is raised and the whole map searched: a
+// new belief, seeded anywhere, replays the last minutes of events, and then takes
+// the share of the hypothesis that the vehicle is lost. What it found competes with
+// what was there from then on; evidence decides. It may have lost the vehicle, too,
+// over a road that the map lacks, say: that share stays lost, for the next search.
 //
 // The search is a function of the set of events. It covers searchBackS before the
 // alarm, no more than maxSearched events of them, and nothing from before the end
@@ -19,11 +21,13 @@ import (
 // It enters enterAfterS after the alarm, by the events' time, and the session
 // waits for it then: whoever runs it meanwhile elsewhere (Config.Begin) changes
 // when the answer comes and not what it is. The next one begins searchAgainS
-// later at the earliest.
+// later at the earliest. A session that itself began anywhere is as good as a search
+// of the same events: its first one leaves the first searchAgainS out.
 const (
 	searchBackS  = 300.0
 	maxSearched  = 1 << 14
 	enterAfterS  = 5.0
+	searchFrom   = 0.05 // 1 less summary's share of a mode from which on a vehicle is located
 	searchAgainS = 60.0
 )
 
@@ -41,7 +45,7 @@ func (s *Session) keepPast(dropped []sensor.Event) {
 	if s.settled != nil {
 		s.settled(dropped)
 	}
-	if s.rates.lost == 0 && s.rates.moved == 0 {
+	if s.unheard || s.rates.lost == 0 && s.rates.moved == 0 {
 		return
 	}
 	s.past = append(s.past, dropped...)
@@ -64,8 +68,9 @@ func (s *Session) look() {
 	case a.search != nil && st.time >= a.search.enter:
 		s.letIn(a.search)
 		a.search, a.searched = nil, st.time
-	case a.search == nil && a.lost >= alarmFrom && (a.searched == 0 || st.time.Seconds(a.searched) >= searchAgainS):
-		a.search = s.begins()
+	case s.unheard: // a search's own
+	case a.search == nil && a.lost >= searchFrom && (a.searched == 0 || st.time.Seconds(a.searched) >= searchAgainS):
+		a.search, a.alarm = s.begins(), true
 	}
 }
 
@@ -113,10 +118,7 @@ func (s *Session) events(from, until sensor.Time) []sensor.Event {
 // anywhere returns a session that is to follow events from anywhere on the map,
 // for nobody to read: it makes no posteriors and keeps no snapshots.
 func (s *Session) anywhere(events []sensor.Event) *Session {
-	never := new(float64)
-	suite := *s.suite
-	suite.Vehicle.LostPerS, suite.Vehicle.MovedPerS = never, never
-	f, err := New(Config{Vehicle: s.vehicle, Space: s.space, Names: s.names, Suite: &suite, MaxCells: s.maxCells, Unguarded: s.unguarded})
+	f, err := New(Config{Vehicle: s.vehicle, Space: s.space, Names: s.names, Suite: s.suite, MaxCells: s.maxCells, Unguarded: s.unguarded})
 	if err != nil {
 		panic("session: " + err.Error()) // it has been made before
 	}
@@ -187,7 +189,8 @@ func (s *Session) letIn(x *search) {
 		a.loose.Mix(&found.loose, gain/(a.off+gain), mostLoose)
 		a.off += gain
 	}
-	filter.Blend(st.belief, f.state.belief, lost*(1-found.off)/(on+lost*(1-found.off)), s.lines, &s.desk().work)
-	a.lost = 0
+	gain := lost * found.on()
+	filter.Blend(st.belief, f.state.belief, gain/(on+gain), s.lines, &s.desk().work)
+	a.lost = lost * found.lost
 	st.pace.stretches = st.pace.stretches[:0] // the scale is another one, perhaps
 }

@@ -153,14 +153,17 @@ type Session struct {
 	// What is kept beside a belief on roads, see aside.
 	rates  rates
 	near   filter.Nearby // nil: nothing comes back onto the roads
+	entry  filter.Entry  // onto the roads, but for its hazard
 	areaM2 float64       // of the map's box
 	// For searches: events that the log has dropped, who runs them; and in one's
 	// own session that nobody reads it, and until when it goes.
 	past      []sensor.Event
 	beginWork func(func()) func()
 	unheard   bool
-	unguarded bool
-	until     sensor.Time
+	// fromAnywhere: the start was, see search.go.
+	fromAnywhere bool
+	unguarded    bool
+	until        sensor.Time
 
 	state  state
 	snaps  []snapshot
@@ -238,7 +241,7 @@ func prepare(c Config) (*Session, error) {
 	s := &Session{
 		posteriorS: c.PosteriorS,
 		vehicle:    c.Vehicle, space: c.Space, names: c.Names, dim: 2, maxCells: c.MaxCells, hasher: summary.NewHasher(),
-		beginWork: c.Begin, desks: c.Desks, unguarded: c.Unguarded, wideSize: wideSize, hugeSize: hugeSize, strideM: strideM, maxWaiting: maxWaiting,
+		beginWork: c.Begin, desks: c.Desks, unguarded: c.Unguarded, fromAnywhere: c.Start.Kind == Anywhere, wideSize: wideSize, hugeSize: hugeSize, strideM: strideM, maxWaiting: maxWaiting,
 	}
 	if s.maxCells == 0 {
 		s.maxCells = defaultMaxCells

@@ -47,8 +47,8 @@ type Posterior struct {
 	// mean, covariance, radii, modes and protection; Lost that of being where
 	// neither map nor motion says, which is not.
 	OffMap, Lost float64
-	// LostAlarm says that being lost is the likeliest, or was, and the vehicle has
-	// not been located since. The session sets it.
+	// LostAlarm says that being lost is the likeliest, or was, or that the whole map
+	// was searched, and the vehicle has not been located since. The session sets it.
 	LostAlarm  bool
 	Protection Protection
 	// AlertLimitM is the one of the options, which Radius95M is compared with.
