@@ -76,6 +76,8 @@ func printScore(w io.Writer, run *sweep.Outcome) error {
 		}
 	} else if s.FiguresAll.RMSEM != nil {
 		line("error", "of the most probable place, never located: rms %.0f m over %d posteriors", *s.FiguresAll.RMSEM, s.FiguresAll.Scored)
+	} else if e := s.TruthElsewhen; e != nil {
+		line("error", "not known: none of the %d truths, of %.0f s to %.0f s after the drive's start, is of the time of a posterior. Are clocks or dates apart?", e.Truths, e.FromS, e.ToS)
 	} else {
 		line("error", "not known: the drive holds no truth for its posteriors")
 	}

@@ -39,6 +39,8 @@ type Details struct {
 	Protection *Exceedance `json:"protection"`
 	// TruthNote says what the truth itself is worth.
 	TruthNote *TruthNote `json:"truth"`
+	// TruthElsewhen is of truths of which none is of the time of a posterior.
+	TruthElsewhen *Elsewhen `json:"truth_elsewhen,omitempty"`
 	// HeldOutFixes compares satellite fixes with what was known without them.
 	HeldOutFixes *HeldOut `json:"held_out_fixes,omitempty"`
 	// LookedBack is of the drive as it is known once it is over, where that was
@@ -48,6 +50,14 @@ type Details struct {
 	Lagged *Lagged `json:"lagged,omitempty"`
 	// Sensors say how the measurements of each sensor fell in what was expected.
 	Sensors []Innovation `json:"sensors"`
+}
+
+// Elsewhen is when truths are that no posterior can be compared with: first and last,
+// in seconds after the drive's start.
+type Elsewhen struct {
+	Truths int     `json:"truths"`
+	FromS  float64 `json:"truths_from_s"`
+	ToS    float64 `json:"truths_to_s"`
 }
 
 // Stretch is a part of a drive.

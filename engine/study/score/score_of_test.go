@@ -91,6 +91,30 @@ func TestWorked(t *testing.T) {
 }
 
 // TestCoverageAndProtection uses errors well between the radii.
+// TestTruthElsewhen: truths of another hour are said to be that, and not that there
+// are none.
+func TestTruthElsewhen(t *testing.T) {
+	in := Input{StartNS: 100e9, Posteriors: []*summary.Posterior{posterior(100, summary.Located), posterior(101, summary.Located)}}
+	for s := range int64(3) {
+		in.Truth = append(in.Truth, Truth{TimeNS: (3700 + s) * 1e9, At: at(0, 0)})
+	}
+	s, err := Of(in)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if want := (Elsewhen{3, 3600, 3602}); s.TruthElsewhen == nil || *s.TruthElsewhen != want {
+		t.Errorf("elsewhen %+v, want %+v", s.TruthElsewhen, want)
+	}
+	in.Truth[0].TimeNS, in.Truth[1].TimeNS = 100e9, 101e9
+	if s, err = Of(in); err != nil || s.TruthElsewhen != nil || s.FiguresAll.Scored != 2 {
+		t.Errorf("elsewhen %+v of truths of which two are not: %v", s.TruthElsewhen, err)
+	}
+	in.Truth = nil
+	if s, err = Of(in); err != nil || s.TruthElsewhen != nil {
+		t.Errorf("elsewhen %+v of no truths: %v", s.TruthElsewhen, err)
+	}
+}
+
 func TestCoverageAndProtection(t *testing.T) {
 	in := Input{}
 	for i, e := range []float64{0.5, 1.5, 2.5, 3.5, 4.5, 5.5} {

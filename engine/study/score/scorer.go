@@ -114,6 +114,10 @@ func (s *Scorer) Score(startNS int64, hash string) (*Score, error) {
 		out.TruthNote.below(&out)
 	}
 	out.FiguresAll = FiguresAll(s.all.figures(s.roads != nil))
+	if list := s.truths.list; len(list) > 0 && out.FiguresAll.Scored == 0 {
+		after := func(t Truth) float64 { return float64(t.TimeNS-startNS) / 1e9 }
+		out.TruthElsewhen = &Elsewhen{len(list), after(list[0]), after(list[len(list)-1])}
+	}
 	return &out, nil
 }
 
