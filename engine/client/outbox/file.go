@@ -68,8 +68,10 @@ var (
 func openFile(path string, d *client.Drive) (f *file, err error) {
 	// bbolt believes its pages: of a damaged file it panics, or reads behind its end.
 	defer debug.SetPanicOnFault(debug.SetPanicOnFault(true))
+	var opened *os.File
 	defer func() {
 		if r := recover(); r != nil {
+			_ = opened.Close() // and with it its lock
 			f, err = nil, (&file{path: path}).damaged("a page", fmt.Errorf("%v", r))
 		}
 	}()
@@ -78,7 +80,11 @@ func openFile(path string, d *client.Drive) (f *file, err error) {
 			return nil, fmt.Errorf("outbox: %w", err)
 		}
 	}
-	db, err := bolt.Open(path, 0o600, &bolt.Options{Timeout: time.Second})
+	db, err := bolt.Open(path, 0o600, &bolt.Options{Timeout: time.Second, OpenFile: func(path string, flag int, mode os.FileMode) (*os.File, error) {
+		var err error
+		opened, err = os.OpenFile(path, flag, mode)
+		return opened, err
+	}})
 	var system *fs.PathError
 	switch {
 	case errors.Is(err, berrors.ErrTimeout):
@@ -89,6 +95,13 @@ func openFile(path string, d *client.Drive) (f *file, err error) {
 		return nil, fmt.Errorf("outbox: %s is no outbox, or is damaged: %w; keep it if it is to be looked at, and give another file", path, err)
 	}
 	f = &file{path: path, db: db}
+	info, err := opened.Stat()
+	if err == nil {
+		err = checkPages(opened, info.Size(), db.Info().PageSize)
+	}
+	if err != nil {
+		return nil, errors.Join(f.damaged("its pages", err), db.Close())
+	}
 	if err := f.begin(d); err != nil {
 		return nil, errors.Join(err, db.Close())
 	}
@@ -100,11 +113,11 @@ func openFile(path string, d *client.Drive) (f *file, err error) {
 func (f *file) begin(d *client.Drive) error {
 	return f.db.Update(func(tx *bolt.Tx) error {
 		about, batches := tx.Bucket(aboutBucket), tx.Bucket(batchesBucket)
-		if about == nil {
+		if first, _ := tx.Cursor().First(); first == nil {
 			return f.make(tx, d)
 		}
-		for err := range tx.Check() {
-			return f.damaged("its pages", err)
+		if about == nil {
+			return f.damaged("its head", errors.New("it is missing"))
 		}
 		if l := string(about.Get([]byte("layout"))); l != layout || batches == nil {
 			return fmt.Errorf("outbox: %s is of another version of this program, layout %.20q: send it with that one", f.path, l)

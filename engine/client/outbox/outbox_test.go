@@ -1,6 +1,7 @@
 package outbox
 
 import (
+	"bytes"
 	"context"
 	"errors"
 	"fmt"
@@ -490,11 +491,19 @@ func TestDamaged(t *testing.T) {
 	for n := 1; n < len(good); n += 1 + len(good)/40 {
 		try(fmt.Sprintf("cut off after %d of %d bytes", n, len(good)), good[:n])
 	}
-	for range 150 {
+	flip := func(i int) {
 		flipped := append([]byte(nil), good...)
-		i := rng.IntN(len(good))
 		flipped[i] ^= 1 << rng.IntN(8)
 		try(fmt.Sprintf("seed %d: a bit of byte %d flipped", seed, i), flipped)
+	}
+	for range 150 {
+		flip(rng.IntN(len(good)))
+	}
+	for i := range 5 {
+		flip(bytes.LastIndex(good, []byte("about")) + i)
+	}
+	for range 300 { // where the pages say what they are and where their elements lie
+		flip(rng.IntN(len(good)/os.Getpagesize())*os.Getpagesize() + rng.IntN(96))
 	}
 	if refused < 30 {
 		t.Errorf("%d of %d damages were noticed", refused, tried)
