@@ -11,17 +11,10 @@ import (
 	"leadline/engine/exact"
 	"leadline/engine/geo"
 	"leadline/engine/sensor"
+	"leadline/fixtures/scenes"
 )
 
-const checkpointSuite = `
-vehicle: {late_window_s: 1}
-posts:
-  - {id: p1, lon: -30, lat: 45.0004, sigma_deg: 3}
-  - {id: p2, lon: -29.998, lat: 45.0004, sigma_deg: 3}
-traffic:
-  road: [{lon: -30.003, lat: 45}, {lon: -29.995, lat: 45}]
-  lines: [{name: middle, at_m: 300}]
-`
+const checkpointSuite = "vehicle: {late_window_s: 1}" + scenes.TwoPosts
 
 // TestCheckpoint: what is restored in the middle, with bearings that wait, goes on
 // to the same bits; what is damaged, or of another road, is refused.
@@ -37,14 +30,7 @@ func TestCheckpoint(t *testing.T) {
 		}
 		return w
 	}
-	var events []sensor.Event
-	for i := range 80 { // a vehicle at 14 m/s past both
-		x := 100 + 14*0.2*float64(i)
-		for k, foot := range []float64{236, 394} {
-			bearing := geo.Heading(geo.Point{E: x - foot, N: -44.5})
-			events = append(events, sensor.Event{Time: sensor.Time(1e18) + sensor.Time(i)*200e6, Sensor: "posts", Number: uint64(2*i + k), Measurement: sensor.AcousticBearing{Post: []string{"p1", "p2"}[k], BearingRad: geo.WrapCompass(bearing), SigmaRad: geo.Rad(3)}})
-		}
-	}
+	events := scenes.PastTwoPosts(1e18)[:160]
 	take := func(w *Watch, evs []sensor.Event) {
 		for _, ev := range evs {
 			if err := w.Take(ev); err != nil {
