@@ -47,7 +47,7 @@ func DialSecure(target string, s Security) (*grpc.ClientConn, error) {
 	options := dialOptions()
 	addresses := strings.Split(target, ",")
 	if len(addresses) > 1 {
-		t := &turning{r: manual.NewBuilderWithScheme("leadline"), all: inAnyOrder(addresses)}
+		t := &turning{r: manual.NewBuilderWithScheme("leadline"), all: inAnyOrder(addresses), aside: turnedFor}
 		t.r.InitialState(resolver.State{Addresses: t.all})
 		options = append(options, t.options()...)
 		target = t.r.Scheme() + ":///servers"

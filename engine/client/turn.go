@@ -21,13 +21,16 @@ import (
 type turning struct {
 	r   *manual.Resolver
 	all []resolver.Address
+	// aside is for how long a server is left aside.
+	aside time.Duration
 
 	mu   sync.Mutex
 	away *resolver.Address // is not used for a while
 	back *time.Timer
 }
 
-// turnedFor is for how long a server is left aside.
+// turnedFor is for how long a server is left aside: what is cut off takes a while to be
+// put back, and one that is asked too early says so again.
 const turnedFor = 15 * time.Second
 
 func (t *turning) options() []grpc.DialOption {
@@ -52,7 +55,7 @@ func (t *turning) heard(from net.Addr, err error) {
 	if t.back != nil {
 		t.back.Stop()
 	}
-	t.back = time.AfterFunc(turnedFor, func() {
+	t.back = time.AfterFunc(t.aside, func() {
 		t.mu.Lock()
 		defer t.mu.Unlock()
 		if t.away == &turn {
