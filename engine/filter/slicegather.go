@@ -2,6 +2,7 @@ package filter
 
 import (
 	"math"
+	"slices"
 
 	"leadline/engine/kernel"
 )
@@ -21,8 +22,10 @@ type sliceSpace struct {
 	line    []int32
 	dropped float64
 	lo, hi  []int32 // the cells of a new slice's rows
-	// What gatherRow takes.
+	// What gather takes.
 	heads   []head
+	extents []extent
+	rows    []kernel.RowTap
 	starts  []int
 	weights []float64
 	whole   []float64 // the weights of all taps
@@ -37,21 +40,39 @@ type sliceSpace struct {
 }
 
 // sliceTap is a source's slice, shifted by rows and cols and weighed; of which there are
-// count, each a column farther than the one before.
+// wide, each a column farther than the one before, or high, each a row.
 type sliceTap struct {
-	slice             int32
-	cols, rows, count int32
-	weight            [4]float64
+	slice                  int32
+	cols, rows, wide, high int32
+	weight                 [4]float64
 }
 
 // head is a tap with its slice's rows; first is where the first of them comes to lie.
 type head struct {
-	rows               []SliceRow
-	first, cols, count int32
+	rows                    []SliceRow
+	first, cols, wide, high int32
+}
+
+// extent is of a row that is made: its first cell and the one beyond its last, and the
+// last first cell and the first one beyond of those that it is made of.
+type extent struct {
+	lo, hi        int32
+	lastLo, least int32
+}
+
+var noExtent = extent{math.MaxInt32, math.MinInt32, math.MinInt32, math.MaxInt32}
+
+// add is the extent with a row's, shifted by cols and up to beyond columns more.
+func (e extent) add(r *SliceRow, cols, beyond int32) extent {
+	if r.Len == 0 {
+		return extent{e.lo, e.hi, math.MaxInt32, e.least}
+	}
+	lo, hi := r.Col+cols, r.Col+r.Len+cols
+	return extent{min(e.lo, lo), max(e.hi, hi+beyond), max(e.lastLo, lo+beyond), min(e.least, hi)}
 }
 
 func oneTap(slice, cols, rows int32, weight float64) sliceTap {
-	return sliceTap{slice, cols, rows, 1, [4]float64{weight}}
+	return sliceTap{slice, cols, rows, 1, 1, [4]float64{weight}}
 }
 
 // begin indexes the slices of s and makes ss.spare an empty grid like it, with reach
@@ -128,42 +149,56 @@ func (ss *sliceSpace) gather(dst, src *Slices, at [2]int32, floor float64) bool 
 	if len(ss.taps) == 0 {
 		return false
 	}
-	top, bottom := int32(math.MaxInt32), int32(math.MinInt32)
+	// The rows of first up to end are made of a row of each tap.
+	top, bottom, first, end := int32(math.MaxInt32), int32(math.MinInt32), int32(math.MinInt32), int32(math.MaxInt32)
 	ss.heads, ss.whole = ss.heads[:0], ss.whole[:0]
+	mass := 0.0
 	for i := range ss.taps {
 		t := &ss.taps[i]
 		c := &src.At[t.slice]
-		top, bottom = min(top, c.Row+t.rows), max(bottom, c.Row+c.Count+t.rows)
-		ss.heads = append(ss.heads, head{src.Rows[c.First : c.First+c.Count], c.Row + t.rows, t.cols, t.count})
-		ss.whole = append(ss.whole, t.weight[:t.count]...)
+		from, to := c.Row+t.rows, c.Row+t.rows+c.Count
+		top, bottom = min(top, from), max(bottom, to+t.high-1)
+		first, end = max(first, from+t.high-1), min(end, to)
+		ss.heads = append(ss.heads, head{src.Rows[c.First : c.First+c.Count], from, t.cols, t.wide, t.high})
+		weights := t.weight[:t.wide*t.high]
+		ss.whole = append(ss.whole, weights...)
+		for _, weight := range weights {
+			mass += float64(weight * c.Mass)
+		}
 	}
-	ss.starts = resize(ss.starts, len(ss.whole))
-	ss.noRows(bottom - top)
+	ss.extents = resize(ss.extents, int(bottom-top))
+	extents := ss.extents
+	for i := range extents {
+		extents[i] = noExtent
+	}
 	for i := range ss.heads {
 		h := &ss.heads[i]
-		lo := ss.lo[h.first-top:][:len(h.rows)]
-		hi := ss.hi[h.first-top:][:len(h.rows)]
-		beyond := h.cols + h.count - 1
-		for k := range h.rows {
-			if r := &h.rows[k]; r.Len > 0 {
-				lo[k], hi[k] = min(lo[k], r.Col+h.cols), max(hi[k], r.Col+r.Len+beyond)
+		for q := range h.high {
+			to := extents[h.first-top+q:][:len(h.rows)]
+			for k := range h.rows {
+				to[k] = to[k].add(&h.rows[k], h.cols, h.wide-1)
 			}
 		}
 	}
-	c := dst.place(at, top, ss.lo, ss.hi)
-	for i := range ss.taps {
-		t := &ss.taps[i]
-		for _, weight := range t.weight[:t.count] {
-			c.Mass += float64(weight * src.At[t.slice].Mass)
+	c := ss.placeExtents(dst, at, top)
+	c.Mass = mass
+	rows := dst.Rows[c.First:]
+	for k := int32(0); k < c.Count; {
+		from := k
+		if top+k >= first {
+			for k < c.Count && top+k < end && extents[k].whole(&rows[k]) {
+				k++
+			}
 		}
-	}
-	for k := range c.Count {
-		r := &dst.Rows[c.First+k]
-		if r.Len == 0 {
+		if k > from {
+			ss.gatherRows(dst, src, rows[from:k], top+from)
 			continue
 		}
-		ss.gatherRow(src, dst.Mass[r.Start:r.Start+int(r.Len)], r.Col, top+k)
-		clear(dst.Mass[r.Start+int(r.Len):][:slicePad])
+		if r := &rows[k]; r.Len > 0 {
+			ss.gatherRagged(src, dst.Mass[r.Start:r.Start+int(r.Len)], r.Col, top+k)
+			clear(dst.Mass[r.Start+int(r.Len):][:slicePad])
+		}
+		k++
 	}
 	ss.dropped += dst.trimRows(c, floor)
 	if c.Count == 0 {
@@ -171,6 +206,45 @@ func (ss *sliceSpace) gather(dst, src *Slices, at [2]int32, floor float64) bool 
 		return false
 	}
 	return true
+}
+
+// whole is whether rows that a row is made of reach all over it, with what is around
+// them.
+func (e *extent) whole(r *SliceRow) bool {
+	return e.lastLo-slicePad <= r.Col && r.Col+r.Len <= e.least+slicePad
+}
+
+// placeExtents appends a slice with rows as ss.extents say, or a little longer. Their
+// masses are not set, nor what is after them.
+func (ss *sliceSpace) placeExtents(s *Slices, at [2]int32, top int32) *Slice {
+	n := len(ss.extents)
+	first := len(s.Rows)
+	s.Rows = slices.Grow(s.Rows, n)[:first+n]
+	rows := s.Rows[first:]
+	start := max(len(s.Mass), slicePad)
+	for k := range rows {
+		e := &ss.extents[k]
+		if rows[k] = (SliceRow{Start: start}); e.hi > e.lo {
+			long := (e.hi - e.lo + sliceLane - 1) &^ (sliceLane - 1)
+			rows[k].Col, rows[k].Len = e.lo, long
+			start += int(long) + slicePad
+		}
+	}
+	s.extend(start)
+	s.At = append(s.At, Slice{East: at[0], North: at[1], Row: top, First: int32(first), Count: int32(n)})
+	return &s.At[len(s.At)-1]
+}
+
+// extend makes room for n masses in all, that are not set; the first are 0.
+func (s *Slices) extend(n int) {
+	old := len(s.Mass)
+	if cap(s.Mass) < n {
+		s.Mass = append(make([]float64, 0, n+n/2), s.Mass...)
+	}
+	s.Mass = s.Mass[:n]
+	if old == 0 {
+		clear(s.Mass[:min(n, slicePad)])
+	}
 }
 
 // trimRows cuts the faint ends of a slice's rows, and the rows before and after all
@@ -219,64 +293,56 @@ func (s *Slices) trim(r *SliceRow, floor float64) (gone float64) {
 	return gone
 }
 
-// gatherRow writes one row of a slice, from col on. Where the rows of all taps reach
-// all over it, with what is around them, they are taken together.
-func (ss *sliceSpace) gatherRow(s *Slices, dst []float64, col, row int32) {
-	n := int32(len(dst))
-	starts := ss.starts
-	taps := 0
+// gatherRows writes rows of a slice, the first of them row, to each of which the rows of
+// all taps reach.
+func (ss *sliceSpace) gatherRows(dst, src *Slices, to []SliceRow, row int32) {
+	ss.rows = ss.rows[:0]
 	for i := range ss.heads {
 		h := &ss.heads[i]
-		k := row - h.first
-		if uint32(k) >= uint32(len(h.rows)) {
-			ss.gatherRagged(s, dst, col, row)
-			return
-		}
-		r := &h.rows[k]
-		off := col - h.cols - r.Col
-		if r.Len == 0 || off-h.count+1 < -slicePad || off+n > r.Len+slicePad {
-			ss.gatherRagged(s, dst, col, row)
-			return
-		}
-		from := r.Start + int(off)
-		for q := range int(h.count) {
-			starts[taps] = from - q
-			taps++
+		for q := range h.high {
+			k := row - h.first - q
+			rows := h.rows[k : k+int32(len(to))]
+			for x := range h.wide {
+				ss.rows = append(ss.rows, kernel.RowTap{Rows: rows, Cols: int(h.cols + x)})
+			}
 		}
 	}
-	kernel.Combine(dst, s.Mass, starts[:taps], ss.whole)
+	ss.starts = resize(ss.starts, len(ss.whole))
+	kernel.CombineRows(dst.Mass, to, src.Mass, ss.rows, ss.whole, ss.starts)
 }
 
-// gatherRagged is gatherRow for rows of which some do not: those that do together, the
-// others one by one.
+// gatherRagged writes one row of a slice, from col on, to which the rows of some taps do
+// not reach, or not all over: those that do together, the others one by one.
 func (ss *sliceSpace) gatherRagged(s *Slices, dst []float64, col, row int32) {
 	starts, weights := ss.starts[:0], ss.weights[:0]
 	ss.partial = ss.partial[:0]
 	n := int32(len(dst))
 	for i := range ss.heads {
 		h := &ss.heads[i]
-		k := row - h.first
-		if k < 0 || k >= int32(len(h.rows)) {
-			continue
-		}
-		r := h.rows[k]
-		if r.Len == 0 {
-			continue
-		}
-		weight := ss.taps[i].weight[:h.count]
-		off := col - h.cols - r.Col
-		if off-h.count+1 >= -slicePad && off+n <= r.Len+slicePad {
-			from := r.Start + int(off)
-			for q, weight := range weight {
-				starts, weights = append(starts, from-q), append(weights, weight)
+		for q := range h.high {
+			k := row - h.first - q
+			if k < 0 || k >= int32(len(h.rows)) {
+				continue
 			}
-			continue
-		}
-		for q, weight := range weight {
-			ss.partial = append(ss.partial, partial{r.Start, int32(q) - off, r.Len, weight})
+			r := h.rows[k]
+			if r.Len == 0 {
+				continue
+			}
+			weight := ss.taps[i].weight[q*h.wide:][:h.wide]
+			off := col - h.cols - r.Col
+			if off-h.wide+1 >= -slicePad && off+n <= r.Len+slicePad {
+				from := r.Start + int(off)
+				for x, weight := range weight {
+					starts, weights = append(starts, from-x), append(weights, weight)
+				}
+				continue
+			}
+			for x, weight := range weight {
+				ss.partial = append(ss.partial, partial{r.Start, int32(x) - off, r.Len, weight})
+			}
 		}
 	}
-	ss.weights = weights
+	ss.starts, ss.weights = starts, weights
 	if len(starts) > 0 {
 		kernel.Combine(dst, s.Mass, starts, weights)
 	} else {
@@ -307,7 +373,6 @@ func (ss *sliceSpace) noRows(n int32) {
 func (s *Slices) place(at [2]int32, top int32, lo, hi []int32) *Slice {
 	s.At = append(s.At, Slice{East: at[0], North: at[1], Row: top, First: int32(len(s.Rows)), Count: int32(len(lo))})
 	n := max(len(s.Mass), slicePad)
-	old := len(s.Mass)
 	for r := range lo {
 		row := SliceRow{Start: n}
 		if hi[r] > lo[r] {
@@ -316,13 +381,7 @@ func (s *Slices) place(at [2]int32, top int32, lo, hi []int32) *Slice {
 		}
 		s.Rows = append(s.Rows, row)
 	}
-	if cap(s.Mass) < n {
-		s.Mass = append(make([]float64, 0, n+n/2), s.Mass...)
-	}
-	s.Mass = s.Mass[:n]
-	if old == 0 {
-		clear(s.Mass[:min(n, slicePad)])
-	}
+	s.extend(n)
 	return &s.At[len(s.At)-1]
 }
 

@@ -240,13 +240,12 @@ func (ss *sliceSpace) share(k int32, a int, by int32, shares []float64, weight f
 	for len(shares) > 0 && shares[len(shares)-1] == 0 {
 		shares = shares[:len(shares)-1]
 	}
-	if a == 1 {
-		for i, share := range shares {
-			ss.taps = append(ss.taps, oneTap(k, 0, by+int32(i), weight*share))
-		}
-		return
+	t := sliceTap{slice: k, wide: 1, high: 1}
+	if n := int32(len(shares)); a == 0 {
+		t.cols, t.wide = by, n
+	} else {
+		t.rows, t.high = by, n
 	}
-	t := sliceTap{slice: k, cols: by, count: int32(len(shares))}
 	for i, share := range shares {
 		t.weight[i] = weight * share
 	}

@@ -4,6 +4,7 @@ import (
 	"math"
 
 	"leadline/engine/geo"
+	"leadline/engine/kernel"
 )
 
 // Slices hold the mass of a plane with velocity axes: a grid of four dimensions,
@@ -48,10 +49,7 @@ type Slice struct {
 
 // SliceRow is the cells Col, Col+1, … of a row, a multiple of sliceLane, and where in
 // Slices.Mass they are: slicePad cells of mass 0 are around them.
-type SliceRow struct {
-	Col, Len int32
-	Start    int
-}
+type SliceRow = kernel.Row
 
 // sliceFloor is the mass of a cell at the end of a row below which it is dropped,
 // and counted. There are many more cells to a tail than on a lattice of positions.
@@ -60,8 +58,8 @@ const sliceFloor = cellFloor
 // Rows are as long as vectors are, so that nothing is left at their ends; and a row may
 // be read as far beyond them as what it gives to the cells around it takes.
 const (
-	sliceLane = 4
-	slicePad  = 4
+	sliceLane = kernel.RowLane
+	slicePad  = kernel.RowPad
 )
 
 // velocity is that of a slice's index along axis a.

@@ -192,40 +192,45 @@ func (sh *sheet) careful(dst, logs []float64, f float64, shares [4]float64) {
 func (sh *sheet) weigh(ss *sliceSpace, s *Slices, c *Slice) (sum float64) {
 	row, f := sh.rowOf(s, c)
 	shares := sharesOf(f, 0)
-	n := sh.width
-	last := sh.end - sh.firstRow
-	ss.weights = ss.weights[:0]
 	plain := true
 	for i := range shares {
 		plain = plain && shares[i] != 0
 		shares[i] *= s.Scale
 	}
 	rows := s.Rows[c.First : c.First+c.Count]
+	// Those of from up to to have all four rows of nodes.
+	at, last := row-1-sh.firstRow, sh.end-sh.firstRow
+	from, to := int32(0), int32(0)
+	if plain {
+		from = min(max(0, (1-at)/2), c.Count)
+		to = max(from, min(c.Count, (last-at-2)/2))
+	}
+	for k := range from {
+		sum += sh.weighRow(ss, s, &rows[k], at+2*k, shares[:])
+	}
+	n := int(sh.width)
 	ss.starts = resize(ss.starts, len(shares))
-	for k := range rows {
-		r := &rows[k]
-		if r.Len == 0 {
-			continue
-		}
-		from, to := r.Start, r.Start+int(r.Len)
-		at := row + 2*int32(k) - 1 - sh.firstRow
-		starts, weights := ss.starts[:0], shares[:]
-		if plain && at >= 0 && at+3 < last {
-			starts = ss.starts[:len(shares)]
-			o := int(at*n + r.Col - sh.col)
-			for i := range starts {
-				starts[i] = o + i*int(n)
-			}
-		} else {
-			weights = ss.weights[:0]
-			for i, share := range shares {
-				if o := at + int32(i); share != 0 && o >= 0 && o < last {
-					starts, weights = append(starts, int(o*n+r.Col-sh.col)), append(weights, share)
-				}
-			}
-			ss.weights = weights
-		}
-		sum += kernel.WeighBy(ss.out[from:to], s.Mass[from:to], sh.lik, starts, weights)
+	sum = kernel.WeighRows(sum, ss.out, s.Mass, rows[from:to], sh.lik, int(at+2*from)*n-int(sh.col), 2*n, n, shares[:], ss.starts)
+	for k := to; k < c.Count; k++ {
+		sum += sh.weighRow(ss, s, &rows[k], at+2*k, shares[:])
 	}
 	return sum
+}
+
+// weighRow is weigh for a row whose first row of nodes is at, of which some may be
+// missing.
+func (sh *sheet) weighRow(ss *sliceSpace, s *Slices, r *SliceRow, at int32, shares []float64) float64 {
+	if r.Len == 0 {
+		return 0
+	}
+	n := sh.width
+	starts, weights := ss.starts[:0], ss.weights[:0]
+	for i, share := range shares {
+		if o := at + int32(i); share != 0 && o >= 0 && o < sh.end-sh.firstRow {
+			starts, weights = append(starts, int(o*n+r.Col-sh.col)), append(weights, share)
+		}
+	}
+	ss.starts, ss.weights = starts, weights
+	from, to := r.Start, r.Start+int(r.Len)
+	return kernel.WeighBy(ss.out[from:to], s.Mass[from:to], sh.lik, starts, weights)
 }

@@ -25,3 +25,11 @@ func combine(dst, src []float64, at []int, weight []float64) {
 func weighBy(dst, mass, src []float64, at []int, weight []float64, sum *[16]float64) {
 	weighByPlain(dst, mass, src, at, weight, sum, 0)
 }
+
+func combineRows(dst []float64, to []Row, src []float64, taps []RowTap, weight []float64, at []int) {
+	combineRowsPlain(dst, to, src, taps, weight, at)
+}
+
+func weighRows(sum float64, dst, mass []float64, rows []Row, src []float64, first, step int, weight []float64, at []int) float64 {
+	return weighRowsPlain(sum, dst, mass, rows, src, first, step, weight, at)
+}

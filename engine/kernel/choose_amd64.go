@@ -77,3 +77,24 @@ func weighBy(dst, mass, src []float64, at []int, weight []float64, sum *[16]floa
 	}
 	weighByPlain(dst, mass, src, at, weight, sum, n)
 }
+
+func combineRows(dst []float64, to []Row, src []float64, taps []RowTap, weight []float64, at []int) {
+	if !vectors || len(dst) == 0 || len(src) == 0 {
+		combineRowsPlain(dst, to, src, taps, weight, at)
+		return
+	}
+	if combineRowsAVX2(&dst[0], &to[0].Col, &src[0], &taps[0].Cols, &weight[0], &at[0], len(to), len(taps), len(dst), len(src)) != len(to) {
+		panic("kernel: a row that is not in what it is of")
+	}
+}
+
+func weighRows(sum float64, dst, mass []float64, rows []Row, src []float64, first, step int, weight []float64, at []int) float64 {
+	if !vectors || len(rows) == 0 || len(mass) == 0 || len(src) == 0 {
+		return weighRowsPlain(sum, dst, mass, rows, src, first, step, weight, at)
+	}
+	_ = dst[len(mass)-1]
+	if weighRowsAVX2(&dst[0], &mass[0], &rows[0].Col, &src[0], &weight[0], &at[0], len(rows), len(at), first, step, at[len(at)-1], len(mass), len(src), &sum) != len(rows) {
+		panic("kernel: a row that is not in what it is of")
+	}
+	return sum
+}

@@ -68,11 +68,7 @@ func WeighBy(dst, mass, src []float64, at []int, weight []float64) float64 {
 	within(src, len(dst), at)
 	var sum [16]float64
 	weighBy(dst, mass, src, at, weight, &sum)
-	var four [4]float64
-	for i := range four {
-		four[i] = sum[i] + sum[4+i] + (sum[8+i] + sum[12+i])
-	}
-	return four[0] + four[1] + (four[2] + four[3])
+	return sumOf(&sum)
 }
 
 // weighByPlain is WeighBy in plain Go, from index i on, a multiple of 4.

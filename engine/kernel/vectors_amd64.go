@@ -24,6 +24,16 @@ func combineAVX2(dst *float64, src *float64, at *int, weight *float64, n int, ta
 //go:noescape
 func weighByAVX2(dst *float64, mass *float64, src *float64, at *int, weight *float64, sum *float64, n int, taps int)
 
+// combineRowsAVX2 is combineRowsPlain for rows of whole lanes; to is the first row, taps the first tap's Cols; done is rows, or the row that has places which are not in dst or src.
+//
+//go:noescape
+func combineRowsAVX2(dst *float64, to *int32, src *float64, taps *int, weight *float64, at *int, rows int, count int, dstLen int, srcLen int) (done int)
+
+// weighRowsAVX2 is weighRowsPlain for rows of whole lanes, to the first, with reach the last of at; sum is added to; done is rows, or the row that has places which are not in mass or src.
+//
+//go:noescape
+func weighRowsAVX2(dst *float64, mass *float64, to *int32, src *float64, weight *float64, at *int, rows int, count int, first int, step int, reach int, massLen int, srcLen int, sum *float64) (done int)
+
 // weighAVX2 is weighPlain for n values, a multiple of 4.
 //
 //go:noescape

@@ -296,16 +296,16 @@ TEXT ·weighByAVX2(SB), NOSPLIT, $0-64
 	MOVQ    dst+0(FP), AX
 	MOVQ    mass+8(FP), CX
 	MOVQ    sum+40(FP), DX
-	VXORPD  Y0, Y0, Y0
-	VMOVUPD (DX), Y1
-	VMOVUPD 32(DX), Y2
-	VMOVUPD 64(DX), Y3
-	VMOVUPD 96(DX), Y4
 	MOVQ    src+16(FP), BX
 	MOVQ    at+24(FP), SI
 	MOVQ    weight+32(FP), DI
 	MOVQ    n+48(FP), R8
 	MOVQ    taps+56(FP), R9
+	VXORPD  Y0, Y0, Y0
+	VMOVUPD (DX), Y1
+	VMOVUPD 32(DX), Y2
+	VMOVUPD 64(DX), Y3
+	VMOVUPD 96(DX), Y4
 
 by32:
 	CMPQ         R8, $0x20
@@ -471,6 +471,436 @@ by4Done:
 	VMOVUPD Y2, 32(DX)
 	VMOVUPD Y3, 64(DX)
 	VMOVUPD Y4, 96(DX)
+	VZEROUPPER
+	RET
+
+// func combineRowsAVX2(dst *float64, to *int32, src *float64, taps *int, weight *float64, at *int, rows int, count int, dstLen int, srcLen int) (done int)
+// Requires: AVX
+TEXT ·combineRowsAVX2(SB), NOSPLIT, $0-88
+	MOVQ at+40(FP), AX
+	MOVQ weight+32(FP), CX
+	MOVQ count+56(FP), DX
+	XORQ BX, BX
+
+row:
+	MOVQ    rows+48(FP), SI
+	SHLQ    $0x04, SI
+	CMPQ    BX, SI
+	JGE     end
+	MOVQ    to+8(FP), SI
+	ADDQ    BX, SI
+	MOVLQSX 4(SI), DI
+	TESTQ   DI, DI
+	JZ      next
+	JS      end
+	MOVLQSX (SI), R8
+	MOVQ    8(SI), SI
+	MOVQ    dstLen+64(FP), R9
+	SUBQ    DI, R9
+	SUBQ    $0x04, R9
+	JS      end
+	CMPQ    SI, R9
+	JA      end
+	MOVQ    srcLen+72(FP), R9
+	SUBQ    DI, R9
+	JS      end
+	MOVQ    taps+24(FP), R10
+	XORQ    R11, R11
+
+tap:
+	MOVQ    -24(R10), R12
+	MOVQ    8(R12)(BX*1), R13
+	MOVLQSX (R12)(BX*1), R12
+	ADDQ    (R10), R12
+	ADDQ    R8, R13
+	SUBQ    R12, R13
+	CMPQ    R13, R9
+	JA      end
+	MOVQ    R13, (AX)(R11*8)
+	ADDQ    $0x20, R10
+	INCQ    R11
+	CMPQ    R11, DX
+	JL      tap
+	MOVQ    dst+0(FP), R8
+	MOVQ    src+16(FP), R9
+	LEAQ    (R8)(SI*8), R8
+
+by48:
+	CMPQ         DI, $0x30
+	JB           by48Done
+	VBROADCASTSD (CX), Y0
+	MOVQ         (AX), R10
+	VMULPD       (R9)(R10*8), Y0, Y2
+	VMULPD       32(R9)(R10*8), Y0, Y3
+	VMULPD       64(R9)(R10*8), Y0, Y4
+	VMULPD       96(R9)(R10*8), Y0, Y5
+	VMULPD       128(R9)(R10*8), Y0, Y6
+	VMULPD       160(R9)(R10*8), Y0, Y7
+	VMULPD       192(R9)(R10*8), Y0, Y8
+	VMULPD       224(R9)(R10*8), Y0, Y9
+	VMULPD       256(R9)(R10*8), Y0, Y10
+	VMULPD       288(R9)(R10*8), Y0, Y11
+	VMULPD       320(R9)(R10*8), Y0, Y12
+	VMULPD       352(R9)(R10*8), Y0, Y13
+	MOVQ         $0x00000001, SI
+
+by48Tap:
+	CMPQ         SI, DX
+	JGE          by48Out
+	VBROADCASTSD (CX)(SI*8), Y0
+	MOVQ         (AX)(SI*8), R10
+	VMULPD       (R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y2, Y2
+	VMULPD       32(R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y3, Y3
+	VMULPD       64(R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y4, Y4
+	VMULPD       96(R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y5, Y5
+	VMULPD       128(R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y6, Y6
+	VMULPD       160(R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y7, Y7
+	VMULPD       192(R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y8, Y8
+	VMULPD       224(R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y9, Y9
+	VMULPD       256(R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y10, Y10
+	VMULPD       288(R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y11, Y11
+	VMULPD       320(R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y12, Y12
+	VMULPD       352(R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y13, Y13
+	INCQ         SI
+	JMP          by48Tap
+
+by48Out:
+	VMOVUPD Y2, (R8)
+	VMOVUPD Y3, 32(R8)
+	VMOVUPD Y4, 64(R8)
+	VMOVUPD Y5, 96(R8)
+	VMOVUPD Y6, 128(R8)
+	VMOVUPD Y7, 160(R8)
+	VMOVUPD Y8, 192(R8)
+	VMOVUPD Y9, 224(R8)
+	VMOVUPD Y10, 256(R8)
+	VMOVUPD Y11, 288(R8)
+	VMOVUPD Y12, 320(R8)
+	VMOVUPD Y13, 352(R8)
+	ADDQ    $0x00000180, R8
+	ADDQ    $0x00000180, R9
+	SUBQ    $0x00000030, DI
+	JMP     by48
+
+by48Done:
+by16:
+	CMPQ         DI, $0x10
+	JB           by16Done
+	VBROADCASTSD (CX), Y0
+	MOVQ         (AX), R10
+	VMULPD       (R9)(R10*8), Y0, Y2
+	VMULPD       32(R9)(R10*8), Y0, Y3
+	VMULPD       64(R9)(R10*8), Y0, Y4
+	VMULPD       96(R9)(R10*8), Y0, Y5
+	MOVQ         $0x00000001, SI
+
+by16Tap:
+	CMPQ         SI, DX
+	JGE          by16Out
+	VBROADCASTSD (CX)(SI*8), Y0
+	MOVQ         (AX)(SI*8), R10
+	VMULPD       (R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y2, Y2
+	VMULPD       32(R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y3, Y3
+	VMULPD       64(R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y4, Y4
+	VMULPD       96(R9)(R10*8), Y0, Y1
+	VADDPD       Y1, Y5, Y5
+	INCQ         SI
+	JMP          by16Tap
+
+by16Out:
+	VMOVUPD Y2, (R8)
+	VMOVUPD Y3, 32(R8)
+	VMOVUPD Y4, 64(R8)
+	VMOVUPD Y5, 96(R8)
+	ADDQ    $0x00000080, R8
+	ADDQ    $0x00000080, R9
+	SUBQ    $0x00000010, DI
+	JMP     by16
+
+by16Done:
+by4:
+	CMPQ         DI, $0x04
+	JB           by4Done
+	VBROADCASTSD (CX), Y0
+	MOVQ         (AX), R10
+	VMULPD       (R9)(R10*8), Y0, Y1
+	MOVQ         $0x00000001, SI
+
+by4Tap:
+	CMPQ         SI, DX
+	JGE          by4Out
+	VBROADCASTSD (CX)(SI*8), Y0
+	MOVQ         (AX)(SI*8), R10
+	VMULPD       (R9)(R10*8), Y0, Y0
+	VADDPD       Y0, Y1, Y1
+	INCQ         SI
+	JMP          by4Tap
+
+by4Out:
+	VMOVUPD Y1, (R8)
+	ADDQ    $0x00000020, R8
+	ADDQ    $0x00000020, R9
+	SUBQ    $0x00000004, DI
+	JMP     by4
+
+by4Done:
+	VXORPD  Y0, Y0, Y0
+	VMOVUPD Y0, (R8)
+
+next:
+	ADDQ $0x10, BX
+	JMP  row
+
+end:
+	SHRQ $0x04, BX
+	MOVQ BX, done+80(FP)
+	VZEROUPPER
+	RET
+
+// func weighRowsAVX2(dst *float64, mass *float64, to *int32, src *float64, weight *float64, at *int, rows int, count int, first int, step int, reach int, massLen int, srcLen int, sum *float64) (done int)
+// Requires: AVX
+TEXT ·weighRowsAVX2(SB), NOSPLIT, $0-120
+	MOVQ   at+40(FP), AX
+	MOVQ   weight+32(FP), CX
+	MOVQ   count+56(FP), DX
+	MOVQ   first+64(FP), SI
+	VXORPD Y0, Y0, Y0
+	MOVQ   sum+104(FP), BX
+	VMOVSD (BX), X1
+	XORQ   BX, BX
+
+row:
+	MOVQ    rows+48(FP), DI
+	CMPQ    BX, DI
+	JGE     end
+	MOVQ    to+16(FP), DI
+	MOVLQSX 4(DI), R8
+	TESTQ   R8, R8
+	JZ      next
+	JS      end
+	MOVQ    8(DI), R9
+	MOVQ    massLen+88(FP), R10
+	SUBQ    R8, R10
+	JS      end
+	CMPQ    R9, R10
+	JA      end
+	MOVLQSX (DI), DI
+	ADDQ    SI, DI
+	MOVQ    srcLen+96(FP), R10
+	SUBQ    R8, R10
+	MOVQ    reach+80(FP), R11
+	SUBQ    R11, R10
+	JS      end
+	CMPQ    DI, R10
+	JA      end
+	MOVQ    src+24(FP), R10
+	MOVQ    dst+0(FP), R11
+	MOVQ    mass+8(FP), R12
+	LEAQ    (R10)(DI*8), R10
+	LEAQ    (R11)(R9*8), R11
+	LEAQ    (R12)(R9*8), R12
+	VXORPD  Y2, Y2, Y2
+	VXORPD  Y3, Y3, Y3
+	VXORPD  Y4, Y4, Y4
+	VXORPD  Y5, Y5, Y5
+
+by32:
+	CMPQ         R8, $0x20
+	JB           by32Done
+	VBROADCASTSD (CX), Y6
+	MOVQ         (AX), R9
+	VMULPD       (R10)(R9*8), Y6, Y8
+	VMULPD       32(R10)(R9*8), Y6, Y9
+	VMULPD       64(R10)(R9*8), Y6, Y10
+	VMULPD       96(R10)(R9*8), Y6, Y11
+	VMULPD       128(R10)(R9*8), Y6, Y12
+	VMULPD       160(R10)(R9*8), Y6, Y13
+	VMULPD       192(R10)(R9*8), Y6, Y14
+	VMULPD       224(R10)(R9*8), Y6, Y15
+	MOVQ         $0x00000001, DI
+
+by32Tap:
+	CMPQ         DI, DX
+	JGE          by32Out
+	VBROADCASTSD (CX)(DI*8), Y6
+	MOVQ         (AX)(DI*8), R9
+	VMULPD       (R10)(R9*8), Y6, Y7
+	VADDPD       Y7, Y8, Y8
+	VMULPD       32(R10)(R9*8), Y6, Y7
+	VADDPD       Y7, Y9, Y9
+	VMULPD       64(R10)(R9*8), Y6, Y7
+	VADDPD       Y7, Y10, Y10
+	VMULPD       96(R10)(R9*8), Y6, Y7
+	VADDPD       Y7, Y11, Y11
+	VMULPD       128(R10)(R9*8), Y6, Y7
+	VADDPD       Y7, Y12, Y12
+	VMULPD       160(R10)(R9*8), Y6, Y7
+	VADDPD       Y7, Y13, Y13
+	VMULPD       192(R10)(R9*8), Y6, Y7
+	VADDPD       Y7, Y14, Y14
+	VMULPD       224(R10)(R9*8), Y6, Y7
+	VADDPD       Y7, Y15, Y15
+	INCQ         DI
+	JMP          by32Tap
+
+by32Out:
+	VMULPD  (R12), Y8, Y8
+	VMAXPD  Y0, Y8, Y8
+	VMOVUPD Y8, (R11)
+	VADDPD  Y8, Y2, Y2
+	VMULPD  32(R12), Y9, Y9
+	VMAXPD  Y0, Y9, Y9
+	VMOVUPD Y9, 32(R11)
+	VADDPD  Y9, Y3, Y3
+	VMULPD  64(R12), Y10, Y10
+	VMAXPD  Y0, Y10, Y10
+	VMOVUPD Y10, 64(R11)
+	VADDPD  Y10, Y4, Y4
+	VMULPD  96(R12), Y11, Y11
+	VMAXPD  Y0, Y11, Y11
+	VMOVUPD Y11, 96(R11)
+	VADDPD  Y11, Y5, Y5
+	VMULPD  128(R12), Y12, Y12
+	VMAXPD  Y0, Y12, Y12
+	VMOVUPD Y12, 128(R11)
+	VADDPD  Y12, Y2, Y2
+	VMULPD  160(R12), Y13, Y13
+	VMAXPD  Y0, Y13, Y13
+	VMOVUPD Y13, 160(R11)
+	VADDPD  Y13, Y3, Y3
+	VMULPD  192(R12), Y14, Y14
+	VMAXPD  Y0, Y14, Y14
+	VMOVUPD Y14, 192(R11)
+	VADDPD  Y14, Y4, Y4
+	VMULPD  224(R12), Y15, Y15
+	VMAXPD  Y0, Y15, Y15
+	VMOVUPD Y15, 224(R11)
+	VADDPD  Y15, Y5, Y5
+	ADDQ    $0x00000100, R11
+	ADDQ    $0x00000100, R12
+	ADDQ    $0x00000100, R10
+	SUBQ    $0x00000020, R8
+	JMP     by32
+
+by32Done:
+by16:
+	CMPQ         R8, $0x10
+	JB           by16Done
+	VBROADCASTSD (CX), Y6
+	MOVQ         (AX), R9
+	VMULPD       (R10)(R9*8), Y6, Y8
+	VMULPD       32(R10)(R9*8), Y6, Y9
+	VMULPD       64(R10)(R9*8), Y6, Y10
+	VMULPD       96(R10)(R9*8), Y6, Y11
+	MOVQ         $0x00000001, DI
+
+by16Tap:
+	CMPQ         DI, DX
+	JGE          by16Out
+	VBROADCASTSD (CX)(DI*8), Y6
+	MOVQ         (AX)(DI*8), R9
+	VMULPD       (R10)(R9*8), Y6, Y7
+	VADDPD       Y7, Y8, Y8
+	VMULPD       32(R10)(R9*8), Y6, Y7
+	VADDPD       Y7, Y9, Y9
+	VMULPD       64(R10)(R9*8), Y6, Y7
+	VADDPD       Y7, Y10, Y10
+	VMULPD       96(R10)(R9*8), Y6, Y7
+	VADDPD       Y7, Y11, Y11
+	INCQ         DI
+	JMP          by16Tap
+
+by16Out:
+	VMULPD  (R12), Y8, Y8
+	VMAXPD  Y0, Y8, Y8
+	VMOVUPD Y8, (R11)
+	VADDPD  Y8, Y2, Y2
+	VMULPD  32(R12), Y9, Y9
+	VMAXPD  Y0, Y9, Y9
+	VMOVUPD Y9, 32(R11)
+	VADDPD  Y9, Y3, Y3
+	VMULPD  64(R12), Y10, Y10
+	VMAXPD  Y0, Y10, Y10
+	VMOVUPD Y10, 64(R11)
+	VADDPD  Y10, Y4, Y4
+	VMULPD  96(R12), Y11, Y11
+	VMAXPD  Y0, Y11, Y11
+	VMOVUPD Y11, 96(R11)
+	VADDPD  Y11, Y5, Y5
+	ADDQ    $0x00000080, R11
+	ADDQ    $0x00000080, R12
+	ADDQ    $0x00000080, R10
+	SUBQ    $0x00000010, R8
+	JMP     by16
+
+by16Done:
+by4:
+	CMPQ         R8, $0x04
+	JB           by4Done
+	VBROADCASTSD (CX), Y6
+	MOVQ         (AX), R9
+	VMULPD       (R10)(R9*8), Y6, Y7
+	MOVQ         $0x00000001, DI
+
+by4Tap:
+	CMPQ         DI, DX
+	JGE          by4Out
+	VBROADCASTSD (CX)(DI*8), Y6
+	MOVQ         (AX)(DI*8), R9
+	VMULPD       (R10)(R9*8), Y6, Y6
+	VADDPD       Y6, Y7, Y7
+	INCQ         DI
+	JMP          by4Tap
+
+by4Out:
+	VMULPD  (R12), Y7, Y7
+	VMAXPD  Y0, Y7, Y7
+	VMOVUPD Y7, (R11)
+	VADDPD  Y7, Y2, Y2
+	ADDQ    $0x00000020, R11
+	ADDQ    $0x00000020, R12
+	ADDQ    $0x00000020, R10
+	SUBQ    $0x00000004, R8
+	JMP     by4
+
+by4Done:
+	VADDPD       Y3, Y2, Y2
+	VADDPD       Y5, Y4, Y4
+	VADDPD       Y4, Y2, Y2
+	VEXTRACTF128 $0x01, Y2, X3
+	VHADDPD      X2, X2, X2
+	VHADDPD      X3, X3, X3
+	VADDSD       X3, X2, X2
+	VADDSD       X2, X1, X1
+
+next:
+	MOVQ to+16(FP), DI
+	ADDQ $0x10, DI
+	MOVQ DI, to+16(FP)
+	MOVQ step+72(FP), DI
+	ADDQ DI, SI
+	INCQ BX
+	JMP  row
+
+end:
+	MOVQ   sum+104(FP), AX
+	VMOVSD X1, (AX)
+	MOVQ   BX, done+112(FP)
 	VZEROUPPER
 	RET
 

@@ -17,6 +17,8 @@ func main() {
 	addScaled()
 	combine()
 	weighBy()
+	combineRows()
+	weighRows()
 	c := constants()
 	weigh(c)
 	logNormal(c)

@@ -105,13 +105,9 @@ func combine() {
 	TEXT("combineAVX2", NOSPLIT, "func(dst, src *float64, at *int, weight *float64, n, taps int)")
 	Pragma("noescape")
 	Doc("combineAVX2 is combinePlain for n values, a multiple of 4.")
-	dst := Load(Param("dst"), GP64())
-	combined(func(sums []VecVirtual) {
-		for i := range sums {
-			VMOVUPD(sums[i], Mem{Base: dst, Disp: 32 * i})
-		}
-		ADDQ(U32(32*len(sums)), dst)
-	}, 12, 4, 1)
+	dst, src, at, weight := Load(Param("dst"), GP64()), Load(Param("src"), GP64()), Load(Param("at"), GP64()), Load(Param("weight"), GP64())
+	n, taps := Load(Param("n"), GP64()), Load(Param("taps"), GP64())
+	combined("", src, at, weight, n, taps, storing(dst), 12, 4, 1)
 	VZEROUPPER()
 	RET()
 }
@@ -122,6 +118,8 @@ func weighBy() {
 	Pragma("noescape")
 	Doc("weighByAVX2 is weighByPlain for n values, a multiple of 4.")
 	dst, mass, sum := Load(Param("dst"), GP64()), Load(Param("mass"), GP64()), Load(Param("sum"), GP64())
+	src, at, weight := Load(Param("src"), GP64()), Load(Param("at"), GP64()), Load(Param("weight"), GP64())
+	n, taps := Load(Param("n"), GP64()), Load(Param("taps"), GP64())
 	zero := YMM()
 	VXORPD(zero, zero, zero)
 	all := make([]VecVirtual, 4)
@@ -129,7 +127,26 @@ func weighBy() {
 		all[i] = YMM()
 		VMOVUPD(Mem{Base: sum, Disp: 32 * i}, all[i])
 	}
-	combined(func(sums []VecVirtual) {
+	combined("", src, at, weight, n, taps, weighing(dst, mass, zero, all), 8, 4, 1)
+	for i := range all {
+		VMOVUPD(all[i], Mem{Base: sum, Disp: 32 * i})
+	}
+	VZEROUPPER()
+	RET()
+}
+
+// storing writes sums to dst, weighing times mass and adds them to all; they move on.
+func storing(dst Register) func(sums []VecVirtual) {
+	return func(sums []VecVirtual) {
+		for i := range sums {
+			VMOVUPD(sums[i], Mem{Base: dst, Disp: 32 * i})
+		}
+		ADDQ(U32(32*len(sums)), dst)
+	}
+}
+
+func weighing(dst, mass Register, zero VecVirtual, all []VecVirtual) func(sums []VecVirtual) {
+	return func(sums []VecVirtual) {
 		for i := range sums {
 			VMULPD(Mem{Base: mass, Disp: 32 * i}, sums[i], sums[i])
 			VMAXPD(zero, sums[i], sums[i]) // zero where it is not above that
@@ -138,22 +155,15 @@ func weighBy() {
 		}
 		ADDQ(U32(32*len(sums)), dst)
 		ADDQ(U32(32*len(sums)), mass)
-	}, 8, 4, 1)
-	for i := range all {
-		VMOVUPD(all[i], Mem{Base: sum, Disp: 32 * i})
 	}
-	VZEROUPPER()
-	RET()
 }
 
 // combined has use take the weighted sums of stretches of src, as many vectors at a
-// time as there are left of the sizes.
-func combined(use func(sums []VecVirtual), sizes ...int) {
-	src, at, weight := Load(Param("src"), GP64()), Load(Param("at"), GP64()), Load(Param("weight"), GP64())
-	n, taps := Load(Param("n"), GP64()), Load(Param("taps"), GP64())
+// time as there are left of the sizes. It uses up src and n; labels begin with prefix.
+func combined(prefix string, src, at, weight, n, taps Register, use func(sums []VecVirtual), sizes ...int) {
 	k, from := GP64(), GP64()
 	for _, vectors := range sizes {
-		name := fmt.Sprintf("by%d", 4*vectors)
+		name := fmt.Sprintf("%sby%d", prefix, 4*vectors)
 		Label(name)
 		CMPQ(n, Imm(uint64(4*vectors)))
 		JB(LabelRef(name + "Done"))

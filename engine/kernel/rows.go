@@ -1,0 +1,96 @@
+package kernel
+
+// Row is a stretch of a row of cells: Len of them, a multiple of RowLane, the first of
+// which is in column Col and at place Start of what they are in.
+type Row struct {
+	Col, Len int32
+	Start    int
+}
+
+// RowLane is what lengths of rows are multiples of, RowPad how many values after each
+// row are the row's own, and 0.
+const (
+	RowLane = 4
+	RowPad  = 4
+)
+
+// RowTap are rows to take from, each shifted by Cols columns.
+type RowTap struct {
+	Rows []Row
+	Cols int
+}
+
+// CombineRows writes rows of dst as weighted sums of rows of src: what row k of to has
+// in column c is
+//
+//	Σ weight[t]·(row k of taps[t], column c - Cols),
+//
+// added in the order of the taps, of which there is at least one, with RowPad zeros
+// after each row that is not empty. Places beside a row count as its columns; all that
+// is read must lie in src, all that is written in dst, which does not overlap src. at is
+// room for a number a tap.
+func CombineRows(dst []float64, to []Row, src []float64, taps []RowTap, weight []float64, at []int) {
+	if len(to) == 0 {
+		return
+	}
+	weight, at = weight[:len(taps)], at[:len(taps)]
+	for i := range taps {
+		_ = taps[i].Rows[len(to)-1]
+	}
+	combineRows(dst, to, src, taps, weight, at)
+}
+
+// combineRowsPlain is CombineRows in plain Go.
+func combineRowsPlain(dst []float64, to []Row, src []float64, taps []RowTap, weight []float64, at []int) {
+	for k, r := range to {
+		n := int(r.Len)
+		if n == 0 {
+			continue
+		}
+		for t := range taps {
+			from := &taps[t].Rows[k]
+			at[t] = from.Start + int(r.Col) - int(from.Col) - taps[t].Cols
+		}
+		within(src, n, at)
+		_ = dst[r.Start+n+RowPad-1]
+		clear(dst[r.Start+n:][:RowPad])
+		combinePlain(dst[r.Start:r.Start+n], src, at, weight, 0)
+	}
+}
+
+// WeighRows does for each row what WeighBy does with src, from place
+// first + k·step + Col for row k and stretches that are pitch places apart, one a
+// weight, and returns sum with the rows' sums added in their order; dst may be mass.
+func WeighRows(sum float64, dst, mass []float64, rows []Row, src []float64, first, step, pitch int, weight []float64, at []int) float64 {
+	at = at[:len(weight)]
+	for i := range at {
+		at[i] = i * pitch
+	}
+	return weighRows(sum, dst, mass, rows, src, first, step, weight, at)
+}
+
+// weighRowsPlain is WeighRows in plain Go, with at where stretches are after the first.
+func weighRowsPlain(all float64, dst, mass []float64, rows []Row, src []float64, first, step int, weight []float64, at []int) float64 {
+	for k, r := range rows {
+		n := int(r.Len)
+		if n == 0 {
+			continue
+		}
+		_ = mass[r.Start+n-1]
+		src := src[first+k*step+int(r.Col):]
+		within(src, n, at)
+		var sum [16]float64
+		weighByPlain(dst[r.Start:r.Start+n], mass[r.Start:r.Start+n], src, at, weight, &sum, 0)
+		all += sumOf(&sum)
+	}
+	return all
+}
+
+// sumOf adds sixteen sums in pairs, four apart before those beside each other.
+func sumOf(sum *[16]float64) float64 {
+	var four [4]float64
+	for i := range four {
+		four[i] = sum[i] + sum[4+i] + (sum[8+i] + sum[12+i])
+	}
+	return four[0] + four[1] + (four[2] + four[3])
+}

@@ -1,0 +1,134 @@
+package kernel
+
+import (
+	"math"
+	"math/rand/v2"
+	"slices"
+	"testing"
+)
+
+// someRows are rows of up to 80 cells, some of none, one after the other.
+func someRows(rng *rand.Rand, count int) (rows []Row, cells int) {
+	cells = RowPad
+	for range count {
+		n := RowLane * rng.IntN(21)
+		rows = append(rows, Row{int32(rng.IntN(9) - 4), int32(n), cells})
+		cells += n + RowPad
+	}
+	return rows, cells
+}
+
+func someCells(rng *rand.Rand, n int) []float64 {
+	src := make([]float64, n)
+	for i := range src {
+		src[i] = rng.NormFloat64() * math.Exp(-300*rng.Float64())
+		if rng.IntN(8) == 0 {
+			src[i] = awkward[rng.IntN(len(awkward))]
+		}
+	}
+	return src
+}
+
+// TestRowsBits compares CombineRows and WeighRows with plain Go, and with Combine and
+// WeighBy row by row.
+func TestRowsBits(t *testing.T) {
+	const seed = 7
+	rng := rand.New(rand.NewPCG(seed, 1))
+	for range 300 {
+		count, taps := 1+rng.IntN(12), 1+rng.IntN(9)
+		to, cells := someRows(rng, count)
+		src := someCells(rng, cells+200)
+		var from []RowTap
+		var weight []float64
+		for range taps {
+			tap := RowTap{Cols: rng.IntN(7) - 3}
+			for k := range to {
+				// Any place that leaves room on either side.
+				tap.Rows = append(tap.Rows, Row{int32(rng.IntN(9) - 4), 4, 12 + rng.IntN(len(src)-24-int(to[k].Len))})
+			}
+			from, weight = append(from, tap), append(weight, rng.NormFloat64())
+		}
+		at := make([]int, 9)
+		got, want, single := someCells(rng, cells), make([]float64, cells), make([]float64, cells)
+		copy(want, got)
+		copy(single, got)
+		CombineRows(got, to, src, from, weight, at)
+		combineRowsPlain(want, to, src, from, weight, at[:taps])
+		sameBits(t, "CombineRows", got, want)
+		for k, r := range to {
+			if r.Len == 0 {
+				continue
+			}
+			var at []int
+			for _, tap := range from {
+				at = append(at, tap.Rows[k].Start+int(r.Col)-int(tap.Rows[k].Col)-tap.Cols)
+			}
+			Combine(single[r.Start:r.Start+int(r.Len)], src, at, weight)
+			clear(single[r.Start+int(r.Len):][:RowPad])
+		}
+		sameBits(t, "CombineRows by rows", got, single)
+
+		first, step, pitch := 4+rng.IntN(9), rng.IntN(7), rng.IntN(9)
+		src = someCells(rng, 300)
+		mass := someCells(rng, cells)
+		copy(want, mass)
+		copy(single, mass)
+		got = slices.Clone(mass)
+		sum := WeighRows(0.5, got, got, to, src, first, step, pitch, weight, at)
+		for i := range at {
+			at[i] = i * pitch
+		}
+		plain := weighRowsPlain(0.5, want, want, to, src, first, step, weight, at[:taps])
+		sameBits(t, "WeighRows", got, want)
+		all := 0.5
+		for k, r := range to {
+			if r.Len > 0 {
+				row := single[r.Start : r.Start+int(r.Len)]
+				all += WeighBy(row, row, src[first+k*step+int(r.Col):], at[:taps], weight)
+			}
+		}
+		sameBits(t, "WeighRows by rows", got, single)
+		sameBits(t, "WeighRows' sum", []float64{sum, sum}, []float64{plain, all})
+	}
+}
+
+// TestRowsOutside has rows that are read or written beyond what there is.
+func TestRowsOutside(t *testing.T) {
+	cells := make([]float64, 24)
+	row := []Row{{0, 8, 4}}
+	for name, f := range map[string]func(){
+		"written beyond": func() {
+			CombineRows(cells[:12], row, make([]float64, 40), []RowTap{{row, 0}}, []float64{1}, make([]int, 1))
+		},
+		"written before": func() {
+			CombineRows(cells, []Row{{0, 8, -4}}, make([]float64, 40), []RowTap{{row, 0}}, []float64{1}, make([]int, 1))
+		},
+		"read before": func() {
+			CombineRows(cells, row, make([]float64, 40), []RowTap{{row, 5}}, []float64{1}, make([]int, 1))
+		},
+		"read beyond": func() {
+			CombineRows(cells, row, make([]float64, 16), []RowTap{{row, -5}}, []float64{1}, make([]int, 1))
+		},
+		"rows that are missing": func() {
+			CombineRows(cells, row, make([]float64, 16), []RowTap{{nil, 0}}, []float64{1}, make([]int, 1))
+		},
+		"weighed beyond": func() {
+			WeighRows(0, cells[:11], cells[:11], row, make([]float64, 40), 0, 0, 1, []float64{1}, make([]int, 1))
+		},
+		"weighed by what is before": func() {
+			WeighRows(0, cells, cells, row, make([]float64, 40), -1, 0, 1, []float64{1}, make([]int, 1))
+		},
+		"weighed by what is beyond": func() {
+			WeighRows(0, cells, cells, row, make([]float64, 14), 0, 0, 7, []float64{1, 1}, make([]int, 2))
+		},
+	} {
+		t.Run(name, func(t *testing.T) {
+			defer func() {
+				if recover() == nil {
+					t.Error("no panic")
+				}
+			}()
+			f()
+		})
+	}
+}
