@@ -303,7 +303,7 @@ func (ss *sliceSpace) gatherRows(dst, src *Slices, to []SliceRow, row int32) {
 			k := row - h.first - q
 			rows := h.rows[k : k+int32(len(to))]
 			for x := range h.wide {
-				ss.rows = append(ss.rows, kernel.RowTap{Rows: rows, Cols: int(h.cols + x)})
+				ss.rows = append(ss.rows, kernel.RowTap{Rows: rows, Cols: int(h.cols + x), Ahead: q+x == 0})
 			}
 		}
 	}

@@ -14,10 +14,13 @@ const (
 	RowPad  = 4
 )
 
-// RowTap are rows to take from, each shifted by Cols columns.
+// RowTap are rows to take from, each shifted by Cols columns. Of rows that several taps
+// share, one is to say Ahead: what comes after them is then fetched from memory before
+// its turn.
 type RowTap struct {
-	Rows []Row
-	Cols int
+	Rows  []Row
+	Cols  int
+	Ahead bool
 }
 
 // CombineRows writes rows of dst as weighted sums of rows of src: what row k of to has

@@ -98,19 +98,19 @@ func TestRowsOutside(t *testing.T) {
 	row := []Row{{0, 8, 4}}
 	for name, f := range map[string]func(){
 		"written beyond": func() {
-			CombineRows(cells[:12], row, make([]float64, 40), []RowTap{{row, 0}}, []float64{1}, make([]int, 1))
+			CombineRows(cells[:12], row, make([]float64, 40), []RowTap{{Rows: row, Cols: 0}}, []float64{1}, make([]int, 1))
 		},
 		"written before": func() {
-			CombineRows(cells, []Row{{0, 8, -4}}, make([]float64, 40), []RowTap{{row, 0}}, []float64{1}, make([]int, 1))
+			CombineRows(cells, []Row{{0, 8, -4}}, make([]float64, 40), []RowTap{{Rows: row, Cols: 0}}, []float64{1}, make([]int, 1))
 		},
 		"read before": func() {
-			CombineRows(cells, row, make([]float64, 40), []RowTap{{row, 5}}, []float64{1}, make([]int, 1))
+			CombineRows(cells, row, make([]float64, 40), []RowTap{{Rows: row, Cols: 5}}, []float64{1}, make([]int, 1))
 		},
 		"read beyond": func() {
-			CombineRows(cells, row, make([]float64, 16), []RowTap{{row, -5}}, []float64{1}, make([]int, 1))
+			CombineRows(cells, row, make([]float64, 16), []RowTap{{Rows: row, Cols: -5}}, []float64{1}, make([]int, 1))
 		},
 		"rows that are missing": func() {
-			CombineRows(cells, row, make([]float64, 16), []RowTap{{nil, 0}}, []float64{1}, make([]int, 1))
+			CombineRows(cells, row, make([]float64, 16), []RowTap{{}}, []float64{1}, make([]int, 1))
 		},
 		"weighed beyond": func() {
 			WeighRows(0, cells[:11], cells[:11], row, make([]float64, 40), 0, 0, 1, []float64{1}, make([]int, 1))

@@ -475,7 +475,7 @@ by4Done:
 	RET
 
 // func combineRowsAVX2(dst *float64, to *int32, src *float64, taps *int, weight *float64, at *int, rows int, count int, dstLen int, srcLen int) (done int)
-// Requires: AVX
+// Requires: AVX, MMX+
 TEXT ·combineRowsAVX2(SB), NOSPLIT, $0-88
 	MOVQ at+40(FP), AX
 	MOVQ weight+32(FP), CX
@@ -508,22 +508,42 @@ row:
 	XORQ    R11, R11
 
 tap:
-	MOVQ    -24(R10), R12
-	MOVQ    8(R12)(BX*1), R13
-	MOVLQSX (R12)(BX*1), R12
-	ADDQ    (R10), R12
-	ADDQ    R8, R13
-	SUBQ    R12, R13
-	CMPQ    R13, R9
-	JA      end
-	MOVQ    R13, (AX)(R11*8)
-	ADDQ    $0x20, R10
-	INCQ    R11
-	CMPQ    R11, DX
-	JL      tap
-	MOVQ    dst+0(FP), R8
-	MOVQ    src+16(FP), R9
-	LEAQ    (R8)(SI*8), R8
+	MOVQ       -24(R10), R12
+	MOVQ       8(R12)(BX*1), R13
+	MOVLQSX    (R12)(BX*1), R12
+	ADDQ       (R10), R12
+	ADDQ       R8, R13
+	SUBQ       R12, R13
+	CMPQ       R13, R9
+	JA         end
+	MOVQ       R13, (AX)(R11*8)
+	CMPB       8(R10), $0x00
+	JEQ        near
+	MOVQ       src+16(FP), R12
+	LEAQ       (R12)(R13*8), R12
+	PREFETCHT0 2048(R12)
+	PREFETCHT0 2112(R12)
+	PREFETCHT0 2176(R12)
+	PREFETCHT0 2240(R12)
+	PREFETCHT0 2304(R12)
+	PREFETCHT0 2368(R12)
+	PREFETCHT0 2432(R12)
+
+near:
+	ADDQ       $0x28, R10
+	INCQ       R11
+	CMPQ       R11, DX
+	JL         tap
+	MOVQ       dst+0(FP), R8
+	MOVQ       src+16(FP), R9
+	LEAQ       (R8)(SI*8), R8
+	PREFETCHT0 2048(R8)
+	PREFETCHT0 2112(R8)
+	PREFETCHT0 2176(R8)
+	PREFETCHT0 2240(R8)
+	PREFETCHT0 2304(R8)
+	PREFETCHT0 2368(R8)
+	PREFETCHT0 2432(R8)
 
 by48:
 	CMPQ         DI, $0x30
@@ -673,7 +693,7 @@ end:
 	RET
 
 // func weighRowsAVX2(dst *float64, mass *float64, to *int32, src *float64, weight *float64, at *int, rows int, count int, first int, step int, reach int, massLen int, srcLen int, sum *float64) (done int)
-// Requires: AVX
+// Requires: AVX, MMX+
 TEXT ·weighRowsAVX2(SB), NOSPLIT, $0-120
 	MOVQ   at+40(FP), AX
 	MOVQ   weight+32(FP), CX
@@ -685,39 +705,46 @@ TEXT ·weighRowsAVX2(SB), NOSPLIT, $0-120
 	XORQ   BX, BX
 
 row:
-	MOVQ    rows+48(FP), DI
-	CMPQ    BX, DI
-	JGE     end
-	MOVQ    to+16(FP), DI
-	MOVLQSX 4(DI), R8
-	TESTQ   R8, R8
-	JZ      next
-	JS      end
-	MOVQ    8(DI), R9
-	MOVQ    massLen+88(FP), R10
-	SUBQ    R8, R10
-	JS      end
-	CMPQ    R9, R10
-	JA      end
-	MOVLQSX (DI), DI
-	ADDQ    SI, DI
-	MOVQ    srcLen+96(FP), R10
-	SUBQ    R8, R10
-	MOVQ    reach+80(FP), R11
-	SUBQ    R11, R10
-	JS      end
-	CMPQ    DI, R10
-	JA      end
-	MOVQ    src+24(FP), R10
-	MOVQ    dst+0(FP), R11
-	MOVQ    mass+8(FP), R12
-	LEAQ    (R10)(DI*8), R10
-	LEAQ    (R11)(R9*8), R11
-	LEAQ    (R12)(R9*8), R12
-	VXORPD  Y2, Y2, Y2
-	VXORPD  Y3, Y3, Y3
-	VXORPD  Y4, Y4, Y4
-	VXORPD  Y5, Y5, Y5
+	MOVQ       rows+48(FP), DI
+	CMPQ       BX, DI
+	JGE        end
+	MOVQ       to+16(FP), DI
+	MOVLQSX    4(DI), R8
+	TESTQ      R8, R8
+	JZ         next
+	JS         end
+	MOVQ       8(DI), R9
+	MOVQ       massLen+88(FP), R10
+	SUBQ       R8, R10
+	JS         end
+	CMPQ       R9, R10
+	JA         end
+	MOVLQSX    (DI), DI
+	ADDQ       SI, DI
+	MOVQ       srcLen+96(FP), R10
+	SUBQ       R8, R10
+	MOVQ       reach+80(FP), R11
+	SUBQ       R11, R10
+	JS         end
+	CMPQ       DI, R10
+	JA         end
+	MOVQ       src+24(FP), R10
+	MOVQ       dst+0(FP), R11
+	MOVQ       mass+8(FP), R12
+	LEAQ       (R10)(DI*8), R10
+	LEAQ       (R11)(R9*8), R11
+	LEAQ       (R12)(R9*8), R12
+	PREFETCHT0 2048(R12)
+	PREFETCHT0 2112(R12)
+	PREFETCHT0 2176(R12)
+	PREFETCHT0 2240(R12)
+	PREFETCHT0 2304(R12)
+	PREFETCHT0 2368(R12)
+	PREFETCHT0 2432(R12)
+	VXORPD     Y2, Y2, Y2
+	VXORPD     Y3, Y3, Y3
+	VXORPD     Y4, Y4, Y4
+	VXORPD     Y5, Y5, Y5
 
 by32:
 	CMPQ         R8, $0x20

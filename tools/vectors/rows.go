@@ -10,9 +10,17 @@ import (
 
 // Where things are in a kernel.Row from its Col on, and in a kernel.RowTap from its Cols.
 const (
-	rowLen, rowStart, rowBytes = 4, 8, 16
-	tapRows, tapBytes          = -24, 32
+	rowLen, rowStart, rowBytes  = 4, 8, 16
+	tapRows, tapAhead, tapBytes = -24, 8, 40
 )
+
+// fetch asks for what comes some rows after p: the CPU does not by itself where a page
+// ends.
+func fetch(p Register) {
+	for i := range 7 {
+		PREFETCHT0(Mem{Base: p, Disp: 2048 + 64*i})
+	}
+}
 
 // combineRows is kernel.CombineRows.
 func combineRows() {
@@ -59,6 +67,12 @@ func combineRows() {
 	CMPQ(from, limit)
 	JA(LabelRef("end"))
 	MOVQ(from, Mem{Base: at, Index: t, Scale: 8})
+	CMPB(Mem{Base: tap, Disp: tapAhead}, Imm(0))
+	JEQ(LabelRef("near"))
+	ahead := Load(Param("src"), GP64())
+	LEAQ(Mem{Base: ahead, Index: from, Scale: 8}, ahead)
+	fetch(ahead)
+	Label("near")
 	ADDQ(Imm(tapBytes), tap)
 	INCQ(t)
 	CMPQ(t, count)
@@ -66,6 +80,7 @@ func combineRows() {
 
 	dst, src := Load(Param("dst"), GP64()), Load(Param("src"), GP64())
 	LEAQ(Mem{Base: dst, Index: start, Scale: 8}, dst)
+	fetch(dst)
 	combined("", src, at, weight, n, count, storing(dst), 12, 4, 1)
 	zero := YMM()
 	VXORPD(zero, zero, zero)
@@ -119,6 +134,7 @@ func weighRows() {
 	LEAQ(Mem{Base: src, Index: from, Scale: 8}, src)
 	LEAQ(Mem{Base: dst, Index: start, Scale: 8}, dst)
 	LEAQ(Mem{Base: mass, Index: start, Scale: 8}, mass)
+	fetch(mass)
 	all := make([]VecVirtual, 4)
 	for i := range all {
 		all[i] = YMM()
