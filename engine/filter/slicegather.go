@@ -24,7 +24,7 @@ type sliceSpace struct {
 	lo, hi  []int32 // the cells of a new slice's rows
 	// What gather takes.
 	heads   []head
-	extents []extent
+	extents []kernel.Extent
 	rows    []kernel.RowTap
 	starts  []int
 	weights []float64
@@ -51,24 +51,6 @@ type sliceTap struct {
 type head struct {
 	rows                    []SliceRow
 	first, cols, wide, high int32
-}
-
-// extent is of a row that is made: its first cell and the one beyond its last, and the
-// last first cell and the first one beyond of those that it is made of.
-type extent struct {
-	lo, hi        int32
-	lastLo, least int32
-}
-
-var noExtent = extent{math.MaxInt32, math.MinInt32, math.MinInt32, math.MaxInt32}
-
-// add is the extent with a row's, shifted by cols and up to beyond columns more.
-func (e extent) add(r *SliceRow, cols, beyond int32) extent {
-	if r.Len == 0 {
-		return extent{e.lo, e.hi, math.MaxInt32, e.least}
-	}
-	lo, hi := r.Col+cols, r.Col+r.Len+cols
-	return extent{min(e.lo, lo), max(e.hi, hi+beyond), max(e.lastLo, lo+beyond), min(e.least, hi)}
 }
 
 func oneTap(slice, cols, rows int32, weight float64) sliceTap {
@@ -169,15 +151,12 @@ func (ss *sliceSpace) gather(dst, src *Slices, at [2]int32, floor float64) bool 
 	ss.extents = resize(ss.extents, int(bottom-top))
 	extents := ss.extents
 	for i := range extents {
-		extents[i] = noExtent
+		extents[i] = kernel.NoExtent
 	}
 	for i := range ss.heads {
 		h := &ss.heads[i]
 		for q := range h.high {
-			to := extents[h.first-top+q:][:len(h.rows)]
-			for k := range h.rows {
-				to[k] = to[k].add(&h.rows[k], h.cols, h.wide-1)
-			}
+			kernel.Widen(extents[h.first-top+q:], h.rows, h.cols, h.wide-1)
 		}
 	}
 	c := ss.placeExtents(dst, at, top)
@@ -186,7 +165,7 @@ func (ss *sliceSpace) gather(dst, src *Slices, at [2]int32, floor float64) bool 
 	for k := int32(0); k < c.Count; {
 		from := k
 		if top+k >= first {
-			for k < c.Count && top+k < end && extents[k].whole(&rows[k]) {
+			for k < c.Count && top+k < end && whole(&extents[k], &rows[k]) {
 				k++
 			}
 		}
@@ -210,8 +189,8 @@ func (ss *sliceSpace) gather(dst, src *Slices, at [2]int32, floor float64) bool 
 
 // whole is whether rows that a row is made of reach all over it, with what is around
 // them.
-func (e *extent) whole(r *SliceRow) bool {
-	return e.lastLo-slicePad <= r.Col && r.Col+r.Len <= e.least+slicePad
+func whole(e *kernel.Extent, r *SliceRow) bool {
+	return -e.MinusLast-slicePad <= r.Col && r.Col+r.Len <= e.Least+slicePad
 }
 
 // placeExtents appends a slice with rows as ss.extents say, or a little longer. Their
@@ -224,9 +203,9 @@ func (ss *sliceSpace) placeExtents(s *Slices, at [2]int32, top int32) *Slice {
 	start := max(len(s.Mass), slicePad)
 	for k := range rows {
 		e := &ss.extents[k]
-		if rows[k] = (SliceRow{Start: start}); e.hi > e.lo {
-			long := (e.hi - e.lo + sliceLane - 1) &^ (sliceLane - 1)
-			rows[k].Col, rows[k].Len = e.lo, long
+		if rows[k] = (SliceRow{Start: start}); e.First < math.MaxInt32 {
+			long := (-e.MinusEnd - e.First + sliceLane - 1) &^ (sliceLane - 1)
+			rows[k].Col, rows[k].Len = e.First, long
 			start += int(long) + slicePad
 		}
 	}
@@ -257,9 +236,11 @@ func (s *Slices) trimRows(c *Slice, floor float64) (gone float64) {
 		if r.Len == 0 {
 			continue
 		}
-		cut := s.trim(r, floor)
-		c.Mass -= cut
-		gone += cut
+		if mass := s.Mass[r.Start : r.Start+int(r.Len)]; faint(mass, floor) || faint(mass[r.Len-sliceLane:], floor) {
+			cut := s.trim(r, floor)
+			c.Mass -= cut
+			gone += cut
+		}
 		if r.Len > 0 {
 			first, last = min(first, k), k
 		}
@@ -412,12 +393,8 @@ func (b *Belief) trimSlices() {
 }
 
 func faint(mass []float64, floor float64) bool {
-	for _, v := range mass[:sliceLane] {
-		if !(v < floor && v > -floor) {
-			return false
-		}
-	}
-	return true
+	v := (*[sliceLane]float64)(mass)
+	return math.Abs(v[0]) < floor && math.Abs(v[1]) < floor && math.Abs(v[2]) < floor && math.Abs(v[3]) < floor
 }
 
 // wipe makes masses 0 and returns what they were in all.

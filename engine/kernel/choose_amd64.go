@@ -98,3 +98,11 @@ func weighRows(sum float64, dst, mass []float64, rows []Row, src []float64, firs
 	}
 	return sum
 }
+
+func widen(to []Extent, rows []Row, cols, beyond int32) {
+	if !vectors || len(rows) == 0 {
+		widenPlain(to, rows, cols, beyond)
+		return
+	}
+	widenAVX2(&to[0].First, &rows[0].Col, len(rows), cols, beyond)
+}

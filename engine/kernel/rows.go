@@ -1,5 +1,7 @@
 package kernel
 
+import "math"
+
 // Row is a stretch of a row of cells: Len of them, a multiple of RowLane, the first of
 // which is in column Col and at place Start of what they are in.
 type Row struct {
@@ -41,6 +43,31 @@ func CombineRows(dst []float64, to []Row, src []float64, taps []RowTap, weight [
 		_ = taps[i].Rows[len(to)-1]
 	}
 	combineRows(dst, to, src, taps, weight, at)
+}
+
+// Extent is of a row that is made of others: its first column, the one beyond its last,
+// below 0, the last first column of those, below 0, and the first one beyond. One of no
+// rows is NoExtent.
+type Extent struct{ First, MinusEnd, MinusLast, Least int32 }
+
+// NoExtent is that of no rows.
+var NoExtent = Extent{math.MaxInt32, math.MaxInt32, math.MaxInt32, math.MaxInt32}
+
+// Widen takes rows into extents, each shifted by cols columns and by up to beyond more.
+// What is made of a row without cells has no last first column: it is out of reach.
+func Widen(to []Extent, rows []Row, cols, beyond int32) { widen(to[:len(rows)], rows, cols, beyond) }
+
+// widenPlain is Widen in plain Go.
+func widenPlain(to []Extent, rows []Row, cols, beyond int32) {
+	for k := range rows {
+		r, e := &rows[k], &to[k]
+		if r.Len == 0 {
+			e.MinusLast = -math.MaxInt32
+			continue
+		}
+		lo, hi := r.Col+cols, r.Col+r.Len+cols
+		*e = Extent{min(e.First, lo), min(e.MinusEnd, -hi-beyond), min(e.MinusLast, -lo-beyond), min(e.Least, hi)}
+	}
 }
 
 // combineRowsPlain is CombineRows in plain Go.

@@ -132,3 +132,26 @@ func TestRowsOutside(t *testing.T) {
 		})
 	}
 }
+
+// TestWidenBits compares Widen with plain Go.
+func TestWidenBits(t *testing.T) {
+	const seed = 8
+	rng := rand.New(rand.NewPCG(seed, 1))
+	for range 300 {
+		n := rng.IntN(12)
+		got := make([]Extent, n+2)
+		for i := range got {
+			got[i] = NoExtent
+		}
+		want := slices.Clone(got)
+		for range 1 + rng.IntN(9) {
+			rows, _ := someRows(rng, n)
+			cols, beyond := int32(rng.IntN(9)-4), int32(rng.IntN(4))
+			Widen(got, rows, cols, beyond)
+			widenPlain(want, rows, cols, beyond)
+		}
+		if !slices.Equal(got, want) {
+			t.Fatalf("seed %d: %v, want %v", seed, got, want)
+		}
+	}
+}

@@ -34,6 +34,11 @@ func combineRowsAVX2(dst *float64, to *int32, src *float64, taps *int, weight *f
 //go:noescape
 func weighRowsAVX2(dst *float64, mass *float64, to *int32, src *float64, weight *float64, at *int, rows int, count int, first int, step int, reach int, massLen int, srcLen int, sum *float64) (done int)
 
+// widenAVX2 is widenPlain for n rows; to is the first extent, rows the first row.
+//
+//go:noescape
+func widenAVX2(to *int32, rows *int32, n int, cols int32, beyond int32)
+
 // weighAVX2 is weighPlain for n values, a multiple of 4.
 //
 //go:noescape

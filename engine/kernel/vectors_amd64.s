@@ -931,6 +931,54 @@ end:
 	VZEROUPPER
 	RET
 
+// func widenAVX2(to *int32, rows *int32, n int, cols int32, beyond int32)
+// Requires: AVX
+TEXT ·widenAVX2(SB), NOSPLIT, $0-32
+	MOVQ    to+0(FP), AX
+	MOVQ    rows+8(FP), CX
+	MOVQ    n+16(FP), DX
+	VMOVDQU extentSigns<>+0(SB), X0
+	VMOVDQU extentEmpty<>+0(SB), X1
+	VPXOR   X2, X2, X2
+	MOVL    cols+24(FP), BX
+	MOVL    beyond+28(FP), SI
+	VMOVD   BX, X3
+	VPSHUFD $0x00, X3, X3
+	VPSIGND X0, X3, X3
+	VMOVD   SI, X4
+	VPSHUFD $0xc3, X4, X4
+	VPSUBD  X4, X3, X3
+
+row:
+	VMOVQ     (CX), X4
+	VPSHUFD   $0x66, X4, X5
+	VPSHUFD   $0x55, X4, X6
+	VPCMPEQD  X2, X6, X6
+	VPSHUFD   $0x00, X4, X4
+	VPADDD    X5, X4, X4
+	VPSIGND   X0, X4, X4
+	VPADDD    X3, X4, X4
+	VPBLENDVB X6, X1, X4, X4
+	VPMINSD   (AX), X4, X4
+	VMOVDQU   X4, (AX)
+	ADDQ      $0x10, AX
+	ADDQ      $0x10, CX
+	DECQ      DX
+	JNZ       row
+	RET
+
+DATA extentSigns<>+0(SB)/4, $0x00000001
+DATA extentSigns<>+4(SB)/4, $0xffffffff
+DATA extentSigns<>+8(SB)/4, $0xffffffff
+DATA extentSigns<>+12(SB)/4, $0x00000001
+GLOBL extentSigns<>(SB), RODATA|NOPTR, $16
+
+DATA extentEmpty<>+0(SB)/4, $0x7fffffff
+DATA extentEmpty<>+4(SB)/4, $0x7fffffff
+DATA extentEmpty<>+8(SB)/4, $0x80000001
+DATA extentEmpty<>+12(SB)/4, $0x7fffffff
+GLOBL extentEmpty<>(SB), RODATA|NOPTR, $16
+
 DATA half<>+0(SB)/8, $0x3fe0000000000000
 DATA half<>+8(SB)/8, $0x3fe0000000000000
 DATA half<>+16(SB)/8, $0x3fe0000000000000

@@ -19,6 +19,7 @@ func main() {
 	weighBy()
 	combineRows()
 	weighRows()
+	widen()
 	c := constants()
 	weigh(c)
 	logNormal(c)

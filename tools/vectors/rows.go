@@ -165,3 +165,50 @@ func weighRows() {
 	VZEROUPPER()
 	RET()
 }
+
+// widen is kernel.Widen: an extent's four numbers at a time.
+func widen() {
+	TEXT("widenAVX2", NOSPLIT, "func(to, rows *int32, n int, cols, beyond int32)")
+	Pragma("noescape")
+	Doc("widenAVX2 is widenPlain for n rows; to is the first extent, rows the first row.")
+	four := func(name string, x ...int32) Mem {
+		m := GLOBL(name, RODATA|NOPTR)
+		for i, v := range x {
+			DATA(4*i, U32(uint32(v)))
+		}
+		return m
+	}
+	const most = 1<<31 - 1
+	to, rows, n := Load(Param("to"), GP64()), Load(Param("rows"), GP64()), Load(Param("n"), GP64())
+	signs, empty, zero := XMM(), XMM(), XMM()
+	VMOVDQU(four("extentSigns", 1, -1, -1, 1), signs)
+	VMOVDQU(four("extentEmpty", most, most, -most, most), empty)
+	VPXOR(zero, zero, zero)
+	// By how much each is more: cols, less cols and beyond.
+	by, more := XMM(), XMM()
+	cols, beyond := Load(Param("cols"), GP32()), Load(Param("beyond"), GP32())
+	VMOVD(cols, by)
+	VPSHUFD(Imm(0), by, by)
+	VPSIGND(signs, by, by)
+	VMOVD(beyond, more)
+	VPSHUFD(Imm(0b11_00_00_11), more, more) // lane 0 is beyond, the others are 0
+	VPSUBD(more, by, by)
+	Label("row")
+	row, length, where := XMM(), XMM(), XMM()
+	VMOVQ(Mem{Base: rows}, row)
+	VPSHUFD(Imm(0b01_10_01_10), row, length) // 0, Len, 0, Len
+	VPSHUFD(Imm(0b01_01_01_01), row, where)
+	VPCMPEQD(zero, where, where)
+	VPSHUFD(Imm(0), row, row)
+	VPADDD(length, row, row)
+	VPSIGND(signs, row, row)
+	VPADDD(by, row, row)
+	VPBLENDVB(where, empty, row, row)
+	VPMINSD(Mem{Base: to}, row, row)
+	VMOVDQU(row, Mem{Base: to})
+	ADDQ(Imm(16), to)
+	ADDQ(Imm(rowBytes), rows)
+	DECQ(n)
+	JNZ(LabelRef("row"))
+	RET()
+}
