@@ -209,8 +209,7 @@ func (sh *sheet) weigh(ss *sliceSpace, s *Slices, c *Slice) (sum float64) {
 		sum += sh.weighRow(ss, s, &rows[k], at+2*k, shares[:])
 	}
 	n := int(sh.width)
-	ss.starts = resize(ss.starts, len(shares))
-	sum = kernel.WeighRows(sum, ss.out, s.Mass, rows[from:to], sh.lik, int(at+2*from)*n-int(sh.col), 2*n, n, shares[:], ss.starts)
+	sum = kernel.WeighRows(sum, ss.out, s.Mass, rows[from:to], sh.lik, int(at+2*from)*n-int(sh.col), 2*n, n, &shares)
 	for k := to; k < c.Count; k++ {
 		sum += sh.weighRow(ss, s, &rows[k], at+2*k, shares[:])
 	}

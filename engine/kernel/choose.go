@@ -30,8 +30,8 @@ func combineRows(dst []float64, to []Row, src []float64, taps []RowTap, weight [
 	combineRowsPlain(dst, to, src, taps, weight, at)
 }
 
-func weighRows(sum float64, dst, mass []float64, rows []Row, src []float64, first, step int, weight []float64, at []int) float64 {
-	return weighRowsPlain(sum, dst, mass, rows, src, first, step, weight, at)
+func weighRows(sum float64, dst, mass []float64, rows []Row, src []float64, first, step, pitch int, weight *[4]float64) float64 {
+	return weighRowsPlain(sum, dst, mass, rows, src, first, step, pitch, weight)
 }
 
 func widen(to []Extent, rows []Row, cols, beyond int32) { widenPlain(to, rows, cols, beyond) }

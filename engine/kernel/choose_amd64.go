@@ -88,12 +88,13 @@ func combineRows(dst []float64, to []Row, src []float64, taps []RowTap, weight [
 	}
 }
 
-func weighRows(sum float64, dst, mass []float64, rows []Row, src []float64, first, step int, weight []float64, at []int) float64 {
-	if !vectors || len(rows) == 0 || len(mass) == 0 || len(src) == 0 {
-		return weighRowsPlain(sum, dst, mass, rows, src, first, step, weight, at)
+func weighRows(sum float64, dst, mass []float64, rows []Row, src []float64, first, step, pitch int, weight *[4]float64) float64 {
+	last := len(src) - 3*pitch
+	if !vectors || len(rows) == 0 || len(mass) == 0 || last <= 0 {
+		return weighRowsPlain(sum, dst, mass, rows, src, first, step, pitch, weight)
 	}
 	_ = dst[len(mass)-1]
-	if weighRowsAVX2(&dst[0], &mass[0], &rows[0].Col, &src[0], &weight[0], &at[0], len(rows), len(at), first, step, at[len(at)-1], len(mass), len(src), &sum) != len(rows) {
+	if weighRowsAVX2(&dst[0], &mass[0], &rows[0].Col, &src[0], &weight[0], len(rows), first, step, pitch, len(mass), last, &sum) != len(rows) {
 		panic("kernel: a row that is not in what it is of")
 	}
 	return sum

@@ -89,18 +89,18 @@ func combineRowsPlain(dst []float64, to []Row, src []float64, taps []RowTap, wei
 }
 
 // WeighRows does for each row what WeighBy does with src, from place
-// first + k·step + Col for row k and stretches that are pitch places apart, one a
-// weight, and returns sum with the rows' sums added in their order; dst may be mass.
-func WeighRows(sum float64, dst, mass []float64, rows []Row, src []float64, first, step, pitch int, weight []float64, at []int) float64 {
-	at = at[:len(weight)]
-	for i := range at {
-		at[i] = i * pitch
+// first + k·step + Col for row k and four stretches that are pitch places apart, and
+// returns sum with the rows' sums added in their order; dst may be mass.
+func WeighRows(sum float64, dst, mass []float64, rows []Row, src []float64, first, step, pitch int, weight *[4]float64) float64 {
+	if pitch < 0 {
+		panic("kernel: stretches that go back")
 	}
-	return weighRows(sum, dst, mass, rows, src, first, step, weight, at)
+	return weighRows(sum, dst, mass, rows, src, first, step, pitch, weight)
 }
 
-// weighRowsPlain is WeighRows in plain Go, with at where stretches are after the first.
-func weighRowsPlain(all float64, dst, mass []float64, rows []Row, src []float64, first, step int, weight []float64, at []int) float64 {
+// weighRowsPlain is WeighRows in plain Go.
+func weighRowsPlain(all float64, dst, mass []float64, rows []Row, src []float64, first, step, pitch int, weight *[4]float64) float64 {
+	at := [4]int{0, pitch, 2 * pitch, 3 * pitch}
 	for k, r := range rows {
 		n := int(r.Len)
 		if n == 0 {
@@ -108,9 +108,9 @@ func weighRowsPlain(all float64, dst, mass []float64, rows []Row, src []float64,
 		}
 		_ = mass[r.Start+n-1]
 		src := src[first+k*step+int(r.Col):]
-		within(src, n, at)
+		within(src, n, at[:])
 		var sum [16]float64
-		weighByPlain(dst[r.Start:r.Start+n], mass[r.Start:r.Start+n], src, at, weight, &sum, 0)
+		weighByPlain(dst[r.Start:r.Start+n], mass[r.Start:r.Start+n], src, at[:], weight[:], &sum, 0)
 		all += sumOf(&sum)
 	}
 	return all

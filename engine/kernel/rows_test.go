@@ -74,17 +74,15 @@ func TestRowsBits(t *testing.T) {
 		copy(want, mass)
 		copy(single, mass)
 		got = slices.Clone(mass)
-		sum := WeighRows(0.5, got, got, to, src, first, step, pitch, weight, at)
-		for i := range at {
-			at[i] = i * pitch
-		}
-		plain := weighRowsPlain(0.5, want, want, to, src, first, step, weight, at[:taps])
+		four := [4]float64{rng.NormFloat64(), rng.NormFloat64(), rng.NormFloat64(), rng.NormFloat64()}
+		sum := WeighRows(0.5, got, got, to, src, first, step, pitch, &four)
+		plain := weighRowsPlain(0.5, want, want, to, src, first, step, pitch, &four)
 		sameBits(t, "WeighRows", got, want)
 		all := 0.5
 		for k, r := range to {
 			if r.Len > 0 {
 				row := single[r.Start : r.Start+int(r.Len)]
-				all += WeighBy(row, row, src[first+k*step+int(r.Col):], at[:taps], weight)
+				all += WeighBy(row, row, src[first+k*step+int(r.Col):], []int{0, pitch, 2 * pitch, 3 * pitch}, four[:])
 			}
 		}
 		sameBits(t, "WeighRows by rows", got, single)
@@ -113,13 +111,13 @@ func TestRowsOutside(t *testing.T) {
 			CombineRows(cells, row, make([]float64, 16), []RowTap{{}}, []float64{1}, make([]int, 1))
 		},
 		"weighed beyond": func() {
-			WeighRows(0, cells[:11], cells[:11], row, make([]float64, 40), 0, 0, 1, []float64{1}, make([]int, 1))
+			WeighRows(0, cells[:11], cells[:11], row, make([]float64, 40), 0, 0, 1, &[4]float64{1})
 		},
 		"weighed by what is before": func() {
-			WeighRows(0, cells, cells, row, make([]float64, 40), -1, 0, 1, []float64{1}, make([]int, 1))
+			WeighRows(0, cells, cells, row, make([]float64, 40), -1, 0, 1, &[4]float64{1})
 		},
 		"weighed by what is beyond": func() {
-			WeighRows(0, cells, cells, row, make([]float64, 14), 0, 0, 7, []float64{1, 1}, make([]int, 2))
+			WeighRows(0, cells, cells, row, make([]float64, 28), 0, 0, 7, &[4]float64{1})
 		},
 	} {
 		t.Run(name, func(t *testing.T) {

@@ -29,10 +29,10 @@ func weighByAVX2(dst *float64, mass *float64, src *float64, at *int, weight *flo
 //go:noescape
 func combineRowsAVX2(dst *float64, to *int32, src *float64, taps *int, weight *float64, at *int, rows int, count int, dstLen int, srcLen int) (done int)
 
-// weighRowsAVX2 is weighRowsPlain for rows of whole lanes, to the first, with reach the last of at; sum is added to; done is rows, or the row that has places which are not in mass or src.
+// weighRowsAVX2 is weighRowsPlain for rows of whole lanes, to the first, with lengths of mass and of src before its last stretch; sum is added to; done is rows, or the row that has places which are not in mass or src.
 //
 //go:noescape
-func weighRowsAVX2(dst *float64, mass *float64, to *int32, src *float64, weight *float64, at *int, rows int, count int, first int, step int, reach int, massLen int, srcLen int, sum *float64) (done int)
+func weighRowsAVX2(dst *float64, mass *float64, to *int32, src *float64, weight *float64, rows int, first int, step int, pitch int, massLen int, srcLen int, sum *float64) (done int)
 
 // widenAVX2 is widenPlain for n rows; to is the first extent, rows the first row.
 //

@@ -692,48 +692,51 @@ end:
 	VZEROUPPER
 	RET
 
-// func weighRowsAVX2(dst *float64, mass *float64, to *int32, src *float64, weight *float64, at *int, rows int, count int, first int, step int, reach int, massLen int, srcLen int, sum *float64) (done int)
+// func weighRowsAVX2(dst *float64, mass *float64, to *int32, src *float64, weight *float64, rows int, first int, step int, pitch int, massLen int, srcLen int, sum *float64) (done int)
 // Requires: AVX, MMX+
-TEXT ·weighRowsAVX2(SB), NOSPLIT, $0-120
-	MOVQ   at+40(FP), AX
-	MOVQ   weight+32(FP), CX
-	MOVQ   count+56(FP), DX
-	MOVQ   first+64(FP), SI
-	VXORPD Y0, Y0, Y0
-	MOVQ   sum+104(FP), BX
-	VMOVSD (BX), X1
-	XORQ   BX, BX
+TEXT ·weighRowsAVX2(SB), NOSPLIT, $0-104
+	MOVQ         pitch+64(FP), AX
+	SHLQ         $0x03, AX
+	LEAQ         (AX)(AX*2), CX
+	MOVQ         first+48(FP), BX
+	MOVQ         to+16(FP), SI
+	MOVQ         weight+32(FP), DX
+	VBROADCASTSD (DX), Y0
+	VBROADCASTSD 8(DX), Y1
+	VBROADCASTSD 16(DX), Y2
+	VBROADCASTSD 24(DX), Y3
+	VXORPD       Y4, Y4, Y4
+	MOVQ         sum+88(FP), DX
+	VMOVSD       (DX), X5
+	XORQ         DX, DX
 
 row:
-	MOVQ       rows+48(FP), DI
-	CMPQ       BX, DI
+	MOVQ       rows+40(FP), DI
+	CMPQ       DX, DI
 	JGE        end
-	MOVQ       to+16(FP), DI
-	MOVLQSX    4(DI), R8
-	TESTQ      R8, R8
+	MOVLQSX    4(SI), DI
+	TESTQ      DI, DI
 	JZ         next
 	JS         end
-	MOVQ       8(DI), R9
-	MOVQ       massLen+88(FP), R10
-	SUBQ       R8, R10
+	MOVQ       8(SI), R8
+	MOVQ       massLen+72(FP), R9
+	SUBQ       DI, R9
+	JS         end
+	CMPQ       R8, R9
+	JA         end
+	MOVLQSX    (SI), R9
+	ADDQ       BX, R9
+	MOVQ       srcLen+80(FP), R10
+	SUBQ       DI, R10
 	JS         end
 	CMPQ       R9, R10
-	JA         end
-	MOVLQSX    (DI), DI
-	ADDQ       SI, DI
-	MOVQ       srcLen+96(FP), R10
-	SUBQ       R8, R10
-	MOVQ       reach+80(FP), R11
-	SUBQ       R11, R10
-	JS         end
-	CMPQ       DI, R10
 	JA         end
 	MOVQ       src+24(FP), R10
 	MOVQ       dst+0(FP), R11
 	MOVQ       mass+8(FP), R12
-	LEAQ       (R10)(DI*8), R10
-	LEAQ       (R11)(R9*8), R11
-	LEAQ       (R12)(R9*8), R12
+	LEAQ       (R10)(R9*8), R10
+	LEAQ       (R11)(R8*8), R11
+	LEAQ       (R12)(R8*8), R12
 	PREFETCHT0 2048(R12)
 	PREFETCHT0 2112(R12)
 	PREFETCHT0 2176(R12)
@@ -741,193 +744,106 @@ row:
 	PREFETCHT0 2304(R12)
 	PREFETCHT0 2368(R12)
 	PREFETCHT0 2432(R12)
-	VXORPD     Y2, Y2, Y2
-	VXORPD     Y3, Y3, Y3
-	VXORPD     Y4, Y4, Y4
-	VXORPD     Y5, Y5, Y5
+	VXORPD     Y6, Y6, Y6
+	VXORPD     Y7, Y7, Y7
+	VXORPD     Y8, Y8, Y8
+	VXORPD     Y9, Y9, Y9
 
-by32:
-	CMPQ         R8, $0x20
-	JB           by32Done
-	VBROADCASTSD (CX), Y6
-	MOVQ         (AX), R9
-	VMULPD       (R10)(R9*8), Y6, Y8
-	VMULPD       32(R10)(R9*8), Y6, Y9
-	VMULPD       64(R10)(R9*8), Y6, Y10
-	VMULPD       96(R10)(R9*8), Y6, Y11
-	VMULPD       128(R10)(R9*8), Y6, Y12
-	VMULPD       160(R10)(R9*8), Y6, Y13
-	VMULPD       192(R10)(R9*8), Y6, Y14
-	VMULPD       224(R10)(R9*8), Y6, Y15
-	MOVQ         $0x00000001, DI
-
-by32Tap:
-	CMPQ         DI, DX
-	JGE          by32Out
-	VBROADCASTSD (CX)(DI*8), Y6
-	MOVQ         (AX)(DI*8), R9
-	VMULPD       (R10)(R9*8), Y6, Y7
-	VADDPD       Y7, Y8, Y8
-	VMULPD       32(R10)(R9*8), Y6, Y7
-	VADDPD       Y7, Y9, Y9
-	VMULPD       64(R10)(R9*8), Y6, Y7
-	VADDPD       Y7, Y10, Y10
-	VMULPD       96(R10)(R9*8), Y6, Y7
-	VADDPD       Y7, Y11, Y11
-	VMULPD       128(R10)(R9*8), Y6, Y7
-	VADDPD       Y7, Y12, Y12
-	VMULPD       160(R10)(R9*8), Y6, Y7
-	VADDPD       Y7, Y13, Y13
-	VMULPD       192(R10)(R9*8), Y6, Y7
-	VADDPD       Y7, Y14, Y14
-	VMULPD       224(R10)(R9*8), Y6, Y7
-	VADDPD       Y7, Y15, Y15
-	INCQ         DI
-	JMP          by32Tap
-
-by32Out:
-	VMULPD  (R12), Y8, Y8
-	VMAXPD  Y0, Y8, Y8
-	VMOVUPD Y8, (R11)
-	VADDPD  Y8, Y2, Y2
-	VMULPD  32(R12), Y9, Y9
-	VMAXPD  Y0, Y9, Y9
-	VMOVUPD Y9, 32(R11)
-	VADDPD  Y9, Y3, Y3
-	VMULPD  64(R12), Y10, Y10
-	VMAXPD  Y0, Y10, Y10
-	VMOVUPD Y10, 64(R11)
-	VADDPD  Y10, Y4, Y4
-	VMULPD  96(R12), Y11, Y11
-	VMAXPD  Y0, Y11, Y11
-	VMOVUPD Y11, 96(R11)
-	VADDPD  Y11, Y5, Y5
-	VMULPD  128(R12), Y12, Y12
-	VMAXPD  Y0, Y12, Y12
-	VMOVUPD Y12, 128(R11)
-	VADDPD  Y12, Y2, Y2
-	VMULPD  160(R12), Y13, Y13
-	VMAXPD  Y0, Y13, Y13
-	VMOVUPD Y13, 160(R11)
-	VADDPD  Y13, Y3, Y3
-	VMULPD  192(R12), Y14, Y14
-	VMAXPD  Y0, Y14, Y14
-	VMOVUPD Y14, 192(R11)
-	VADDPD  Y14, Y4, Y4
-	VMULPD  224(R12), Y15, Y15
-	VMAXPD  Y0, Y15, Y15
-	VMOVUPD Y15, 224(R11)
-	VADDPD  Y15, Y5, Y5
-	ADDQ    $0x00000100, R11
-	ADDQ    $0x00000100, R12
-	ADDQ    $0x00000100, R10
-	SUBQ    $0x00000020, R8
-	JMP     by32
-
-by32Done:
-by16:
-	CMPQ         R8, $0x10
-	JB           by16Done
-	VBROADCASTSD (CX), Y6
-	MOVQ         (AX), R9
-	VMULPD       (R10)(R9*8), Y6, Y8
-	VMULPD       32(R10)(R9*8), Y6, Y9
-	VMULPD       64(R10)(R9*8), Y6, Y10
-	VMULPD       96(R10)(R9*8), Y6, Y11
-	MOVQ         $0x00000001, DI
-
-by16Tap:
-	CMPQ         DI, DX
-	JGE          by16Out
-	VBROADCASTSD (CX)(DI*8), Y6
-	MOVQ         (AX)(DI*8), R9
-	VMULPD       (R10)(R9*8), Y6, Y7
-	VADDPD       Y7, Y8, Y8
-	VMULPD       32(R10)(R9*8), Y6, Y7
-	VADDPD       Y7, Y9, Y9
-	VMULPD       64(R10)(R9*8), Y6, Y7
-	VADDPD       Y7, Y10, Y10
-	VMULPD       96(R10)(R9*8), Y6, Y7
-	VADDPD       Y7, Y11, Y11
-	INCQ         DI
-	JMP          by16Tap
-
-by16Out:
-	VMULPD  (R12), Y8, Y8
-	VMAXPD  Y0, Y8, Y8
-	VMOVUPD Y8, (R11)
-	VADDPD  Y8, Y2, Y2
-	VMULPD  32(R12), Y9, Y9
-	VMAXPD  Y0, Y9, Y9
-	VMOVUPD Y9, 32(R11)
-	VADDPD  Y9, Y3, Y3
-	VMULPD  64(R12), Y10, Y10
-	VMAXPD  Y0, Y10, Y10
-	VMOVUPD Y10, 64(R11)
-	VADDPD  Y10, Y4, Y4
-	VMULPD  96(R12), Y11, Y11
-	VMAXPD  Y0, Y11, Y11
-	VMOVUPD Y11, 96(R11)
-	VADDPD  Y11, Y5, Y5
+sixteen:
+	CMPQ    DI, $0x10
+	JB      sixteenDone
+	VMULPD  (R10), Y0, Y11
+	VMULPD  (R10)(AX*1), Y1, Y10
+	VADDPD  Y10, Y11, Y11
+	VMULPD  (R10)(AX*2), Y2, Y10
+	VADDPD  Y10, Y11, Y11
+	VMULPD  (R10)(CX*1), Y3, Y10
+	VADDPD  Y10, Y11, Y11
+	VMULPD  32(R10), Y0, Y12
+	VMULPD  32(R10)(AX*1), Y1, Y10
+	VADDPD  Y10, Y12, Y12
+	VMULPD  32(R10)(AX*2), Y2, Y10
+	VADDPD  Y10, Y12, Y12
+	VMULPD  32(R10)(CX*1), Y3, Y10
+	VADDPD  Y10, Y12, Y12
+	VMULPD  64(R10), Y0, Y13
+	VMULPD  64(R10)(AX*1), Y1, Y10
+	VADDPD  Y10, Y13, Y13
+	VMULPD  64(R10)(AX*2), Y2, Y10
+	VADDPD  Y10, Y13, Y13
+	VMULPD  64(R10)(CX*1), Y3, Y10
+	VADDPD  Y10, Y13, Y13
+	VMULPD  96(R10), Y0, Y14
+	VMULPD  96(R10)(AX*1), Y1, Y10
+	VADDPD  Y10, Y14, Y14
+	VMULPD  96(R10)(AX*2), Y2, Y10
+	VADDPD  Y10, Y14, Y14
+	VMULPD  96(R10)(CX*1), Y3, Y10
+	VADDPD  Y10, Y14, Y14
+	VMULPD  (R12), Y11, Y11
+	VMAXPD  Y4, Y11, Y11
+	VMOVUPD Y11, (R11)
+	VADDPD  Y11, Y6, Y6
+	VMULPD  32(R12), Y12, Y12
+	VMAXPD  Y4, Y12, Y12
+	VMOVUPD Y12, 32(R11)
+	VADDPD  Y12, Y7, Y7
+	VMULPD  64(R12), Y13, Y13
+	VMAXPD  Y4, Y13, Y13
+	VMOVUPD Y13, 64(R11)
+	VADDPD  Y13, Y8, Y8
+	VMULPD  96(R12), Y14, Y14
+	VMAXPD  Y4, Y14, Y14
+	VMOVUPD Y14, 96(R11)
+	VADDPD  Y14, Y9, Y9
 	ADDQ    $0x00000080, R11
 	ADDQ    $0x00000080, R12
 	ADDQ    $0x00000080, R10
-	SUBQ    $0x00000010, R8
-	JMP     by16
+	SUBQ    $0x00000010, DI
+	JMP     sixteen
 
-by16Done:
-by4:
-	CMPQ         R8, $0x04
-	JB           by4Done
-	VBROADCASTSD (CX), Y6
-	MOVQ         (AX), R9
-	VMULPD       (R10)(R9*8), Y6, Y7
-	MOVQ         $0x00000001, DI
-
-by4Tap:
-	CMPQ         DI, DX
-	JGE          by4Out
-	VBROADCASTSD (CX)(DI*8), Y6
-	MOVQ         (AX)(DI*8), R9
-	VMULPD       (R10)(R9*8), Y6, Y6
-	VADDPD       Y6, Y7, Y7
-	INCQ         DI
-	JMP          by4Tap
-
-by4Out:
-	VMULPD  (R12), Y7, Y7
-	VMAXPD  Y0, Y7, Y7
-	VMOVUPD Y7, (R11)
-	VADDPD  Y7, Y2, Y2
+sixteenDone:
+four:
+	CMPQ    DI, $0x04
+	JB      fourDone
+	VMULPD  (R10), Y0, Y11
+	VMULPD  (R10)(AX*1), Y1, Y10
+	VADDPD  Y10, Y11, Y11
+	VMULPD  (R10)(AX*2), Y2, Y10
+	VADDPD  Y10, Y11, Y11
+	VMULPD  (R10)(CX*1), Y3, Y10
+	VADDPD  Y10, Y11, Y11
+	VMULPD  (R12), Y11, Y11
+	VMAXPD  Y4, Y11, Y11
+	VMOVUPD Y11, (R11)
+	VADDPD  Y11, Y6, Y6
 	ADDQ    $0x00000020, R11
 	ADDQ    $0x00000020, R12
 	ADDQ    $0x00000020, R10
-	SUBQ    $0x00000004, R8
-	JMP     by4
+	SUBQ    $0x00000004, DI
+	JMP     four
 
-by4Done:
-	VADDPD       Y3, Y2, Y2
-	VADDPD       Y5, Y4, Y4
-	VADDPD       Y4, Y2, Y2
-	VEXTRACTF128 $0x01, Y2, X3
-	VHADDPD      X2, X2, X2
-	VHADDPD      X3, X3, X3
-	VADDSD       X3, X2, X2
-	VADDSD       X2, X1, X1
+fourDone:
+	VADDPD       Y7, Y6, Y6
+	VADDPD       Y9, Y8, Y8
+	VADDPD       Y8, Y6, Y6
+	VEXTRACTF128 $0x01, Y6, X7
+	VHADDPD      X6, X6, X6
+	VHADDPD      X7, X7, X7
+	VADDSD       X7, X6, X6
+	VADDSD       X6, X5, X5
 
 next:
-	MOVQ to+16(FP), DI
-	ADDQ $0x10, DI
-	MOVQ DI, to+16(FP)
-	MOVQ step+72(FP), DI
-	ADDQ DI, SI
-	INCQ BX
+	ADDQ $0x10, SI
+	MOVQ step+56(FP), DI
+	ADDQ DI, BX
+	INCQ DX
 	JMP  row
 
 end:
-	MOVQ   sum+104(FP), AX
-	VMOVSD X1, (AX)
-	MOVQ   BX, done+112(FP)
+	MOVQ   sum+88(FP), AX
+	VMOVSD X5, (AX)
+	MOVQ   DX, done+96(FP)
 	VZEROUPPER
 	RET
 

@@ -95,13 +95,22 @@ func combineRows() {
 	RET()
 }
 
-// weighRows is kernel.WeighRows.
+// weighRows is kernel.WeighRows: sixteen at a time, then four, with the weights in
+// registers.
 func weighRows() {
-	TEXT("weighRowsAVX2", NOSPLIT, "func(dst, mass *float64, to *int32, src *float64, weight *float64, at *int, rows, count, first, step, reach, massLen, srcLen int, sum *float64) (done int)")
+	TEXT("weighRowsAVX2", NOSPLIT, "func(dst, mass *float64, to *int32, src *float64, weight *float64, rows, first, step, pitch, massLen, srcLen int, sum *float64) (done int)")
 	Pragma("noescape")
-	Doc("weighRowsAVX2 is weighRowsPlain for rows of whole lanes, to the first, with reach the last of at; sum is added to; done is rows, or the row that has places which are not in mass or src.")
-	at, weight, count := Load(Param("at"), GP64()), Load(Param("weight"), GP64()), Load(Param("count"), GP64())
-	row, first := GP64(), Load(Param("first"), GP64())
+	Doc("weighRowsAVX2 is weighRowsPlain for rows of whole lanes, to the first, with lengths of mass and of src before its last stretch; sum is added to; done is rows, or the row that has places which are not in mass or src.")
+	pitch, three := Load(Param("pitch"), GP64()), GP64()
+	SHLQ(Imm(3), pitch)
+	LEAQ(Mem{Base: pitch, Index: pitch, Scale: 2}, three)
+	row, first, to := GP64(), Load(Param("first"), GP64()), Load(Param("to"), GP64())
+	weight := Load(Param("weight"), GP64())
+	by := make([]VecVirtual, 4)
+	for i := range by {
+		by[i] = YMM()
+		VBROADCASTSD(Mem{Base: weight, Disp: 8 * i}, by[i])
+	}
 	zero, total := YMM(), XMM()
 	VXORPD(zero, zero, zero)
 	VMOVSD(Mem{Base: Load(Param("sum"), GP64())}, total)
@@ -109,7 +118,6 @@ func weighRows() {
 	Label("row")
 	CMPQ(row, Load(Param("rows"), GP64()))
 	JGE(LabelRef("end"))
-	to := Load(Param("to"), GP64())
 	n, start, from := GP64(), GP64(), GP64()
 	MOVLQSX(Mem{Base: to, Disp: rowLen}, n)
 	TESTQ(n, n)
@@ -125,7 +133,6 @@ func weighRows() {
 	ADDQ(first, from)
 	limit = Load(Param("srcLen"), GP64())
 	SUBQ(n, limit)
-	SUBQ(Load(Param("reach"), GP64()), limit)
 	JS(LabelRef("end"))
 	CMPQ(from, limit)
 	JA(LabelRef("end"))
@@ -140,7 +147,29 @@ func weighRows() {
 		all[i] = YMM()
 		VXORPD(all[i], all[i], all[i])
 	}
-	combined("", src, at, weight, n, count, weighing(dst, mass, zero, all), 8, 4, 1)
+	use := weighing(dst, mass, zero, all)
+	block := func(name string, vectors int) {
+		Label(name)
+		CMPQ(n, Imm(uint64(4*vectors)))
+		JB(LabelRef(name + "Done"))
+		sums, part := make([]VecVirtual, vectors), YMM()
+		for i := range sums {
+			at := 32 * i
+			sums[i] = YMM()
+			VMULPD(Mem{Base: src, Disp: at}, by[0], sums[i])
+			for k, from := range []Mem{{Base: src, Index: pitch, Scale: 1, Disp: at}, {Base: src, Index: pitch, Scale: 2, Disp: at}, {Base: src, Index: three, Scale: 1, Disp: at}} {
+				VMULPD(from, by[k+1], part)
+				VADDPD(part, sums[i], sums[i])
+			}
+		}
+		use(sums)
+		ADDQ(U32(32*vectors), src)
+		SUBQ(U32(4*vectors), n)
+		JMP(LabelRef(name))
+		Label(name + "Done")
+	}
+	block("sixteen", 4)
+	block("four", 1)
 	VADDPD(all[1], all[0], all[0])
 	VADDPD(all[3], all[2], all[2])
 	VADDPD(all[2], all[0], all[0])
@@ -152,15 +181,12 @@ func weighRows() {
 	VADDSD(high, low, low)
 	VADDSD(low, total, total)
 	Label("next")
-	to = Load(Param("to"), GP64())
 	ADDQ(Imm(rowBytes), to)
-	Store(to, Param("to"))
 	ADDQ(Load(Param("step"), GP64()), first)
 	INCQ(row)
 	JMP(LabelRef("row"))
 	Label("end")
-	sum := Load(Param("sum"), GP64())
-	VMOVSD(total, Mem{Base: sum})
+	VMOVSD(total, Mem{Base: Load(Param("sum"), GP64())})
 	Store(row, ReturnIndex(0))
 	VZEROUPPER()
 	RET()
@@ -191,7 +217,7 @@ func widen() {
 	VPSHUFD(Imm(0), by, by)
 	VPSIGND(signs, by, by)
 	VMOVD(beyond, more)
-	VPSHUFD(Imm(0b11_00_00_11), more, more) // lane 0 is beyond, the others are 0
+	VPSHUFD(Imm(0b11_00_00_11), more, more) // 0, beyond, beyond, 0
 	VPSUBD(more, by, by)
 	Label("row")
 	row, length, where := XMM(), XMM(), XMM()
