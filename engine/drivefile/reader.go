@@ -39,6 +39,7 @@ type Reader struct {
 	header *Header
 	truths bool  // pass over measurements
 	err    error // sticky
+	quick  quick
 }
 
 // NewReader reads from r; errors call it name.
@@ -88,6 +89,10 @@ func (r *Reader) read() (*Record, error) {
 			continue
 		}
 		m := &leadlinev1.DriveRecord{}
+		if r.quick.read(line, m) {
+			return r.record(m)
+		}
+		proto.Reset(m)
 		if bad := protojson.Unmarshal(line, m); bad != nil {
 			bad = plain(bad)
 			if errors.Is(err, io.EOF) {

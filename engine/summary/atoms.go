@@ -179,7 +179,7 @@ func (s *Summarizer) outside(r float64) float64 {
 		if far := (c + a.v) * a.is; far < tailEnd {
 			p += kernel.QuickUpper(far)
 		}
-		sum += float64(a.mass * math.Min(needleExcess*p, 1))
+		sum += float64(a.mass * min(needleExcess*p, 1))
 	}
 	return sum
 }

@@ -70,7 +70,7 @@ func (t *tailTables) circleTail(alpha, beta float64) float64 {
 		if m0 == 0 {
 			return 0
 		}
-		return math.Min(t.weigh(alpha, m0, m1, m2)*(circleExcess/kernel.InvSqrt2Pi), 1)
+		return min(t.weigh(alpha, m0, m1, m2)*(circleExcess/kernel.InvSqrt2Pi), 1)
 	}
 	q, f = kernel.QuickTail(-alpha)
 	n0, n1, n2 := moments(alpha, q, f, -alpha)
@@ -92,7 +92,7 @@ func moments(alpha, q, f, y float64) (m0, m1, m2 float64) {
 
 // weigh returns ∫ w f from the moments of w.
 func (t *tailTables) weigh(alpha, m0, m1, m2 float64) float64 {
-	mean := math.Max(m1/m0, 0) // of a tiny m0, the difference of two, rounding may be more
+	mean := max(m1/m0, 0) // of a tiny m0, the difference of two, rounding may be more
 	variance := m2/m0 - float64(mean*mean)
 	z := alpha * mean
 	d := 1 + float64(float64(z*z)*(1.25+0.75*z/(z+6)))

@@ -114,6 +114,7 @@ func (s *lagged) ljungBox(h int) (q, p float64) {
 type Innovations struct {
 	list    []*innovations
 	waiting []fell // may be weighed again
+	enough  int    // of them, to count those that may not
 	last    sensor.Time
 }
 
@@ -151,12 +152,13 @@ func (v *Innovations) Add(c session.Change) {
 		f.scores[row] = c.Fell.Score(row)
 	}
 	v.waiting = append(v.waiting, f)
-	if n := len(v.waiting); n >= 4096 {
+	if n := len(v.waiting); n >= v.enough {
 		old := 0
 		for old < n && v.waiting[old].ns < int64(v.last)-mostBackNS {
 			old++
 		}
 		v.count(old)
+		v.enough = max(4096, 2*len(v.waiting)) // those that stay are moved once for each of their number
 	}
 }
 
