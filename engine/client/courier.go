@@ -52,6 +52,8 @@ const (
 	shortestWait = 100 * time.Millisecond
 	longestWait  = 10 * time.Second
 	longestHint  = time.Minute
+	// A wait after the word of a server is at most so many times what it said.
+	hintFor = 5
 )
 
 // maxCarried bounds a batch in bytes, so that each fits into a message of any
@@ -240,8 +242,12 @@ func (c *Courier) lose(err error) error {
 		c.drive.OnLost(err)
 	}
 	c.wait = min(max(2*c.wait, shortestWait), longestWait)
+	hint := min(RetryAfter(err), longestHint)
+	if hint > 0 { // the server is there, and knows better
+		c.wait = min(c.wait, max(hintFor*hint, shortestWait))
+	}
 	wait := c.wait/2 + mathrand.N(c.wait/2)
-	if hint := min(RetryAfter(err), longestHint); hint > wait {
+	if hint > wait {
 		wait = hint + mathrand.N(hint/4+1)
 	}
 	late := time.NewTimer(wait)

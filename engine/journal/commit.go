@@ -137,7 +137,7 @@ func (p *partition) replace(ctx context.Context, next *pack, refusal error) (seq
 			return last.Sequence, true, refusal
 		}
 		p.fallDown(err)
-		if p.j.log.Wait(ctx, wait); ctx.Err() != nil {
+		if p.j.log.Wait(ctx, min(wait, longestPause)); ctx.Err() != nil {
 			return 0, false, ErrClosed
 		}
 	}
@@ -158,7 +158,10 @@ func noRoom(err error) bool {
 	return false
 }
 
-const shortestWait = 20 * time.Millisecond
+const (
+	shortestWait = 20 * time.Millisecond
+	longestPause = 200 * time.Millisecond // of one who asks whether there is a broker again
+)
 
 // writerHeader of a message names the journal that wrote it: two that take a
 // partition over at once would give their packs the same numbers.
@@ -187,7 +190,11 @@ func (p *partition) settle(ctx context.Context, next *pack, why error) (in Messa
 		}
 		p.fallDown(why)
 		p.j.revive()
-		if p.j.log.Wait(ctx, wait); ctx.Err() != nil {
+		pause := wait
+		if err != nil { // there is nobody to ask: as soon as there is, vehicles wait for it
+			pause = min(wait, longestPause)
+		}
+		if p.j.log.Wait(ctx, pause); ctx.Err() != nil {
 			return Message{}, ErrClosed
 		}
 	}

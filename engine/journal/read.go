@@ -138,6 +138,11 @@ type message struct {
 	writer   string
 }
 
+// heartbeat is how often the broker says that it is at it while it has nothing to
+// send. After two without one it is asked again: the first question may have come to a
+// broker of a cluster that does not know yet who is to answer it, and then nobody does.
+const heartbeat = 500 * time.Millisecond
+
 // messages reads a stream's messages in their order.
 func messages(ctx context.Context, st jetstream.Stream, cfg jetstream.OrderedConsumerConfig, take func(message) error) error {
 	c, err := st.OrderedConsumer(ctx, cfg)
@@ -148,7 +153,7 @@ func messages(ctx context.Context, st jetstream.Stream, cfg jetstream.OrderedCon
 		_ = st.DeleteConsumer(ctx, c.CachedInfo().Name) // or it ends by itself
 		return nil
 	}
-	messages, err := c.Messages(jetstream.PullMaxMessages(512))
+	messages, err := c.Messages(jetstream.PullMaxMessages(512), jetstream.PullExpiry(10*time.Second), jetstream.PullHeartbeat(heartbeat))
 	if err != nil {
 		return fmt.Errorf("journal: reading: %w", err)
 	}

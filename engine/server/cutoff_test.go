@@ -218,3 +218,55 @@ func saysCutOff(t *testing.T, err error) {
 		t.Errorf("a server that is cut off says %v", err)
 	}
 }
+
+// TestBrokerAway has nobody reach the broker for longer than a lease: vehicles keep
+// their streams, also those that go through another server, and go on once it is back.
+func TestBrokerAway(t *testing.T) {
+	if testing.Short() {
+		t.Skip("waits for leases: not with -short")
+	}
+	o := atBroker(t)
+	o.Shared, o.Partitions = true, 4
+	way := newCable(t, strings.TrimPrefix(o.Broker.URL, "nats://"))
+	o.Broker.URL = "nats://" + way.address
+	a, b := among(t, o), among(t, o)
+	balanced(t, o.Partitions, a, b)
+	const vehicles = 6
+	evs := voyage(6, 20)
+	want, _, _ := replayedIn(t, 1000, 0, evs)
+	var cars [vehicles]*client.Carrier
+	for v := range cars {
+		conn, err := client.Dial([]string{a.addr, b.addr}[v%2])
+		if err != nil {
+			t.Fatal(err)
+		}
+		defer conn.Close()
+		cars[v], err = client.Carry(limited(t), conn, client.Drive{Header: header(fmt.Sprint("v", v)), Name: "d", Batch: 1, OnLost: func(err error) { t.Errorf("v%d loses its stream: %v", v, err) }})
+		if err != nil {
+			t.Fatal(err)
+		}
+	}
+	for i, ev := range evs {
+		if i == 10 {
+			way.pulled.Store(true)
+			time.Sleep(a.cfg.Share.Lease + cutAfter + 2*time.Second)
+			if a.s.joined().Fresh() || b.s.joined().Fresh() {
+				t.Error("a lease holds without a broker")
+			}
+			way.pulled.Store(false)
+		}
+		for _, c := range cars {
+			if err := c.Send(wire.FromEvent(ev)); err != nil {
+				t.Fatal(err)
+			}
+		}
+	}
+	for v, c := range cars {
+		closed, err := c.Close()
+		if err != nil || closed.GetPosteriorSha256() != want {
+			t.Errorf("v%d: %v, %v", v, closed, err)
+		}
+	}
+	a.stop(limited(t))
+	b.stop(limited(t))
+}

@@ -197,6 +197,7 @@ func (s *Server) whoseUntil(ctx context.Context, vehicle string, until time.Time
 			switch {
 			case at.Mine:
 				return nil, nil
+			case cut == nil && nobody != nil, isOver(cut): // what was known of others may hold no more
 			case at.Server != nil && !forwarded(ctx):
 				return at.Server, nil
 			case at.Server != nil: // whoever sent it here knows less

@@ -26,7 +26,7 @@ func (s *Share) Where(i int) Place {
 	switch {
 	case p.owner == s.o.Self.ID:
 		out.Mine = s.core.answers(i, now)
-	case p.owner != "" && s.core.alive(p.owner, now):
+	case p.owner != "" && s.core.maybeAlive(p.owner, now):
 		of := s.core.servers[p.owner].Server
 		out.Server = &of
 	}
@@ -35,6 +35,18 @@ func (s *Share) Where(i int) Place {
 
 // ID is this server's.
 func (s *Share) ID() string { return s.o.Self.ID }
+
+// Known are the other servers that there were a while ago, alive or not.
+func (s *Share) Known() (out []Server) {
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	for id, of := range s.core.servers {
+		if id != s.o.Self.ID && !of.Leaving {
+			out = append(out, of.Server)
+		}
+	}
+	return out
+}
 
 // Others are the other servers that are alive, in the order of their names.
 func (s *Share) Others() (out []Server) {

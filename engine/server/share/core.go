@@ -145,6 +145,12 @@ func (c *core) alive(id string, now time.Time) bool {
 	return id == c.self.ID || s != nil && now.Sub(s.at) < c.lease
 }
 
+// maybeAlive is alive for those who would only ask it: a server that cannot renew, or
+// could not just now, does not hear of others, which may renew all the same.
+func (c *core) maybeAlive(id string, now time.Time) bool {
+	return c.alive(id, now) || c.servers[id] != nil && (!c.fresh(now) || now.Sub(c.began) < c.lease)
+}
+
 // counts are how many partitions each server has that shares in them.
 func (c *core) counts(now time.Time) map[string]int {
 	n := map[string]int{}

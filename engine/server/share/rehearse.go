@@ -10,10 +10,16 @@ import (
 func Rehearse(o Options, k Keys, now func() time.Time) *Share { return newShare(o, k, now) }
 
 // Beat renews the lease.
-func (s *Share) Beat(ctx context.Context) error { return s.renew(ctx) }
+func (s *Share) Beat(ctx context.Context) error {
+	err := s.renew(ctx)
+	if err == nil {
+		s.catchUp(ctx)
+	}
+	return err
+}
 
 // Heard takes what a watch of the keys brings.
-func (s *Share) Heard(e Entry) { s.saw(e) }
+func (s *Share) Heard(e Entry) { s.told(e) }
 
 // Step does the next thing that is to be done, if there is one.
 func (s *Share) Step() (done bool) {

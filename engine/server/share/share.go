@@ -6,6 +6,7 @@ import (
 	"errors"
 	"fmt"
 	"log/slog"
+	"slices"
 	"strconv"
 	"strings"
 	"sync"
@@ -60,6 +61,8 @@ type Share struct {
 	mu      sync.Mutex
 	core    *core
 	own     uint64        // revision of this server's key
+	before  uint64        // that it had before the last renewal
+	heard   uint64        // the highest that a watch has brought
 	changed chan struct{} // closed when a partition changes hands
 }
 
@@ -144,10 +147,18 @@ func (s *Share) watch(w jetstream.KeyWatcher, known chan struct{}) {
 			case e == nil:
 				close(known)
 			default:
-				s.saw(entry(e))
+				s.told(entry(e))
 			}
 		}
 	}
+}
+
+// told takes what the watch brings.
+func (s *Share) told(e Entry) {
+	s.mu.Lock()
+	s.heard = max(s.heard, e.Revision)
+	s.mu.Unlock()
+	s.saw(e)
 }
 
 // saw takes in a key.
@@ -204,21 +215,57 @@ func (s *Share) wake() {
 
 // beat renews this server's key.
 func (s *Share) beat() {
-	tick := time.NewTicker(s.o.Lease / beats)
-	defer tick.Stop()
-	for {
+	every := s.o.Lease / beats
+	next := time.NewTimer(every)
+	defer next.Stop()
+	for failed := false; ; {
 		select {
 		case <-s.ended.Done():
 			return
-		case <-tick.C:
+		case <-next.C:
 		}
-		ctx, cancel := context.WithTimeout(s.ended, s.o.Lease/2)
+		began := time.Now()
+		ctx, cancel := context.WithTimeout(s.ended, s.o.Lease*3/10) // there is time for two
 		err := s.renew(ctx)
 		cancel()
-		if err != nil && s.ended.Err() == nil {
-			s.o.Log.Warn("this server's lease cannot be renewed", "error", err)
+		if err == nil {
+			ctx, cancel = context.WithTimeout(s.ended, every)
+			s.catchUp(ctx)
+			cancel()
+			next.Reset(max(every-time.Since(began), 0))
+		} else {
+			if !failed && s.ended.Err() == nil {
+				s.o.Log.Warn("this server's lease cannot be renewed", "error", err)
+			}
+			next.Reset(every / 5)
 		}
+		failed = err != nil
 		s.wake()
+	}
+}
+
+// catchUp reads the keys, if the watch has not brought what this server wrote before
+// its last renewal: the broker that it was at may be gone, and it takes a while until
+// that shows.
+func (s *Share) catchUp(ctx context.Context) {
+	s.mu.Lock()
+	behind := s.heard < s.before
+	keys := make([]string, 0, len(s.core.servers)+len(s.core.parts))
+	for id := range s.core.servers {
+		keys = append(keys, serverPrefix+id)
+	}
+	s.mu.Unlock()
+	if !behind {
+		return
+	}
+	slices.Sort(keys)
+	for i := range s.o.Partitions {
+		keys = append(keys, partitionPrefix+strconv.Itoa(i))
+	}
+	for _, key := range keys {
+		if s.learn(ctx, key) != nil {
+			return // the next renewal does it again
+		}
 	}
 }
 
@@ -248,7 +295,7 @@ func (s *Share) renew(ctx context.Context) error {
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	wasFresh := s.core.fresh(sent)
-	s.own = next
+	s.before, s.own = s.own, next
 	s.core.renew(sent, s.now())
 	if !wasFresh {
 		s.news()

@@ -68,14 +68,14 @@ func (s *Share) do(do step) {
 	case sweep:
 		err = s.kv.Delete(ctx, serverPrefix+do.dead, do.deadAt)
 		if err == nil || wrongRevision(err) {
-			s.learn(ctx, serverPrefix+do.dead)
+			_ = s.learn(ctx, serverPrefix+do.dead) // it is known then, or asked for again
 		}
 	}
 	if err == nil || s.ended.Err() != nil {
 		return
 	}
 	if wrongRevision(err) { // another one was faster
-		s.learn(ctx, key)
+		_ = s.learn(ctx, key) // likewise
 	} else {
 		s.o.Log.Warn("a partition cannot change hands yet", "partition", i+1, "error", err)
 	}
@@ -115,8 +115,8 @@ func (s *Share) put(ctx context.Context, i int, owner string, over uint64) error
 	return nil
 }
 
-// learn reads a key that is not as it was thought to be.
-func (s *Share) learn(ctx context.Context, key string) {
+// learn reads a key that is not, or may not be, as it was thought to be.
+func (s *Share) learn(ctx context.Context, key string) error {
 	switch e, err := s.kv.Get(ctx, key); {
 	case err == nil:
 		s.saw(e)
@@ -126,7 +126,10 @@ func (s *Share) learn(ctx context.Context, key string) {
 		if id, ok := strings.CutPrefix(key, serverPrefix); ok {
 			delete(s.core.servers, id)
 		}
+	default:
+		return err
 	}
+	return nil
 }
 
 // set notes what this server does with a partition, and returns what it did.
