@@ -1,5 +1,7 @@
 package filter
 
+import "leadline/engine/kernel"
+
 // Weights at -3 … 3 finer cells of interpolation by cubics: a point keeps half
 // its mass (refineMiddle) and those between two get -1/32, 9/32, 9/32, -1/32 of
 // their neighbours' (refineFar, refineNear). Mean and variance are kept.
@@ -86,18 +88,18 @@ func (ts *tileSpace) window(t *Tiles, cells []float64, corner TileAt, cols, rows
 			if j, ok := ts.index[TileAt{tc, tr}]; ok {
 				tile = t.tile(int(j))
 			}
-			for r := r0; r < r1; r++ {
-				o := cells[(r-corner.Row)*cols+c0-corner.Col:][:c1-c0]
-				if tile == nil {
-					clear(o)
-					continue
+			o := cells[(r0-corner.Row)*cols+c0-corner.Col:]
+			if tile == nil {
+				for r := range r1 - r0 {
+					clear(o[r*cols:][:c1-c0])
 				}
-				in := tile[(r-tr*TileSide)*TileSide+c0-tc*TileSide:][:c1-c0]
-				if back {
-					copy(in, o)
-				} else {
-					copy(o, in)
-				}
+				continue
+			}
+			in := tile[(r0-tr*TileSide)*TileSide+c0-tc*TileSide:]
+			if back {
+				kernel.CopyBlock(in, o, int(c1-c0), int(r1-r0), TileSide, int(cols))
+			} else {
+				kernel.CopyBlock(o, in, int(c1-c0), int(r1-r0), int(cols), TileSide)
 			}
 		}
 	}

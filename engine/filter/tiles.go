@@ -27,6 +27,8 @@ type tileSpace struct {
 	at    []int32
 	fine  []float64
 	first Tiles
+	// marked is of sorted.
+	marked []bool
 }
 
 // tile returns the masses of tile i.
@@ -93,9 +95,11 @@ func (b *Belief) spread(ts *tileSpace) {
 	reach := int32(len(ts.taps.weight) - 1)
 	ts.dilate(src)
 	dst.Mass = resize(dst.Mass, len(dst.At)*tileCells)
-	for i, at := range dst.At {
-		out := dst.tile(i)
+	kept := 0
+	for _, at := range dst.At {
+		out := dst.tile(kept)
 		if ts.spreadTile(out, at, src) {
+			kept = b.keepTile(dst, at, kept)
 			continue
 		}
 		clear(out)
@@ -105,10 +109,39 @@ func (b *Belief) spread(ts *tileSpace) {
 			ts.gather(out, at, src, n*ts.taps.col, n*ts.taps.row, weight)
 			ts.gather(out, at, src, -n*ts.taps.col, -n*ts.taps.row, weight)
 		}
+		kept = b.keepTile(dst, at, kept)
 	}
+	dst.At, dst.Mass = dst.At[:kept], dst.Mass[:kept*tileCells]
 	dst.Surplus = src.Surplus
 	b.Tiles, ts.spare = *dst, *src
-	b.dropTiles()
+}
+
+// keepTile makes tile j of t the one at a place, if there is mass in it, and returns
+// how many there are then. What is faint is zeroed and counted.
+func (b *Belief) keepTile(t *Tiles, at TileAt, j int) int {
+	if !b.dropFaint(t.tile(j)) {
+		return j
+	}
+	t.At[j] = at
+	return j + 1
+}
+
+// dropFaint zeroes cells below cellFloor and counts what goes; it reports whether some
+// are left.
+func (b *Belief) dropFaint(tile []float64) bool {
+	some, below := kernel.Faint(tile, cellFloor)
+	if !below {
+		return some
+	}
+	some = false
+	for i, v := range tile {
+		if v < cellFloor && v > 0 {
+			b.Pruned += v
+			tile[i] = 0
+		}
+		some = some || tile[i] > 0
+	}
+	return some
 }
 
 // spreadTile writes what the masses of src make of a tile, over copied rows of the
@@ -212,7 +245,7 @@ func (ts *tileSpace) dilate(src *Tiles) {
 			cover(TileAt{lo.Col + n*dc, lo.Row + n*dr}, TileAt{hi.Col + n*dc, hi.Row + n*dr})
 		}
 	}
-	ts.spare.At = sortedTiles(at)
+	ts.spare.At = ts.sorted(at)
 }
 
 // appendTiles appends the tiles between two cells.
@@ -229,6 +262,35 @@ func appendTiles(at []TileAt, lo, hi TileAt) []TileAt {
 func sortedTiles(at []TileAt) []TileAt {
 	slices.SortFunc(at, compareTiles)
 	return slices.Compact(at)
+}
+
+// sorted is sortedTiles, by marking them where they lie in the box around all, if that
+// is small beside them.
+func (ts *tileSpace) sorted(at []TileAt) []TileAt {
+	if len(at) == 0 {
+		return at
+	}
+	lo, hi := at[0], at[0]
+	for _, t := range at {
+		lo = TileAt{min(lo.Col, t.Col), min(lo.Row, t.Row)}
+		hi = TileAt{max(hi.Col, t.Col), max(hi.Row, t.Row)}
+	}
+	cols, rows := int64(hi.Col)-int64(lo.Col)+1, int64(hi.Row)-int64(lo.Row)+1
+	if most := 4 * int64(len(at)); cols > most || rows > most || cols*rows > most {
+		return sortedTiles(at)
+	}
+	ts.marked = resize(ts.marked, int(cols*rows))
+	clear(ts.marked)
+	for _, t := range at {
+		ts.marked[int(t.Row-lo.Row)*int(cols)+int(t.Col-lo.Col)] = true
+	}
+	at = at[:0]
+	for i, m := range ts.marked {
+		if m {
+			at = append(at, TileAt{lo.Col + int32(i%int(cols)), lo.Row + int32(i/int(cols))})
+		}
+	}
+	return at
 }
 
 // occupied returns the first and last column and row with mass.
@@ -255,13 +317,19 @@ func occupied(tile []float64) (lo, hi TileAt, any bool) {
 // dropTiles zeroes cells below cellFloor, removes empty tiles and counts what
 // goes.
 func (b *Belief) dropTiles() {
-	for i, v := range b.Tiles.Mass {
-		if v < cellFloor && v > 0 {
-			b.Pruned += v
-			b.Tiles.Mass[i] = 0
+	t := &b.Tiles
+	j := 0
+	for i := range t.At {
+		if !b.dropFaint(t.tile(i)) {
+			continue
 		}
+		if i != j {
+			t.At[j] = t.At[i]
+			copy(t.tile(j), t.tile(i))
+		}
+		j++
 	}
-	b.dropEmptyTiles()
+	t.At, t.Mass = t.At[:j], t.Mass[:j*tileCells]
 }
 
 func positive(v float64) bool { return v > 0 }

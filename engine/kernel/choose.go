@@ -35,3 +35,9 @@ func weighRows(sum float64, dst, mass []float64, rows []Row, src []float64, firs
 }
 
 func widen(to []Extent, rows []Row, cols, beyond int32) { widenPlain(to, rows, cols, beyond) }
+
+func copyBlock(dst, src []float64, cols, rows, to, from int) {
+	copyBlockPlain(dst, src, cols, rows, to, from)
+}
+
+func faint(src []float64, floor float64) (some, below bool) { return faintPlain(src, floor, 0) }

@@ -107,3 +107,23 @@ func widen(to []Extent, rows []Row, cols, beyond int32) {
 	}
 	widenAVX2(&to[0].First, &rows[0].Col, len(rows), cols, beyond)
 }
+
+func copyBlock(dst, src []float64, cols, rows, to, from int) {
+	if !vectors {
+		copyBlockPlain(dst, src, cols, rows, to, from)
+		return
+	}
+	copyBlockAVX2(&dst[0], &src[0], cols, rows, to*valueBytes, from*valueBytes)
+}
+
+func faint(src []float64, floor float64) (some, below bool) {
+	n := 0
+	if vectors {
+		if n = len(src) &^ 3; n > 0 {
+			a, b := faintAVX2(&src[0], n, floor)
+			some, below = a != 0, b != 0
+		}
+	}
+	a, b := faintPlain(src, floor, n)
+	return some || a, below || b
+}

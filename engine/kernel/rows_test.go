@@ -153,3 +153,33 @@ func TestWidenBits(t *testing.T) {
 		}
 	}
 }
+
+// TestBlockBits compares CopyBlock and Faint with plain Go.
+func TestBlockBits(t *testing.T) {
+	const seed = 9
+	rng := rand.New(rand.NewPCG(seed, 1))
+	for range 500 {
+		cols, rows := rng.IntN(20), rng.IntN(6)
+		to, from := cols+rng.IntN(5), cols+rng.IntN(5)
+		src := someCells(rng, rows*from+rng.IntN(9))
+		got := someCells(rng, rows*to+rng.IntN(9))
+		want := slices.Clone(got)
+		CopyBlock(got, src, cols, rows, to, from)
+		copyBlockPlain(want, src, cols, rows, to, from)
+		sameBits(t, "CopyBlock", got, want)
+		floor := math.Exp(-300 * rng.Float64())
+		for i := range src {
+			if rng.IntN(3) > 0 {
+				src[i] = math.Copysign(0, src[i])
+			}
+		}
+		some, below := Faint(src, floor)
+		if a, b := faintPlain(src, floor, 0); a != some || b != below {
+			t.Fatalf("seed %d: Faint(%v, %v) is %v, %v", seed, src, floor, some, below)
+		}
+		plain := slices.ContainsFunc(src, func(v float64) bool { return v > 0 && v < floor })
+		if plain != below {
+			t.Fatalf("seed %d: below is %v", seed, below)
+		}
+	}
+}

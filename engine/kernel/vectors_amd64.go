@@ -39,6 +39,16 @@ func weighRowsAVX2(dst *float64, mass *float64, to *int32, src *float64, weight 
 //go:noescape
 func widenAVX2(to *int32, rows *int32, n int, cols int32, beyond int32)
 
+// copyBlockAVX2 is copyBlockPlain; to and from in bytes.
+//
+//go:noescape
+func copyBlockAVX2(dst *float64, src *float64, cols int, rows int, to int, from int)
+
+// faintAVX2 is faintPlain for n values, a multiple of 4; other than 0 for true.
+//
+//go:noescape
+func faintAVX2(src *float64, n int, floor float64) (some int, below int)
+
 // weighAVX2 is weighPlain for n values, a multiple of 4.
 //
 //go:noescape

@@ -895,6 +895,74 @@ DATA extentEmpty<>+8(SB)/4, $0x80000001
 DATA extentEmpty<>+12(SB)/4, $0x7fffffff
 GLOBL extentEmpty<>(SB), RODATA|NOPTR, $16
 
+// func copyBlockAVX2(dst *float64, src *float64, cols int, rows int, to int, from int)
+// Requires: AVX
+TEXT ·copyBlockAVX2(SB), NOSPLIT, $0-48
+	MOVQ dst+0(FP), AX
+	MOVQ src+8(FP), CX
+	MOVQ cols+16(FP), DX
+	MOVQ rows+24(FP), BX
+	MOVQ to+32(FP), SI
+	MOVQ from+40(FP), DI
+	MOVQ DX, R9
+	ANDQ $-4, R9
+
+row:
+	XORQ R8, R8
+
+four:
+	CMPQ    R8, R9
+	JGE     one
+	VMOVUPD (CX)(R8*8), Y0
+	VMOVUPD Y0, (AX)(R8*8)
+	ADDQ    $0x04, R8
+	JMP     four
+
+one:
+	CMPQ   R8, DX
+	JGE    next
+	VMOVSD (CX)(R8*8), X0
+	VMOVSD X0, (AX)(R8*8)
+	INCQ   R8
+	JMP    one
+
+next:
+	ADDQ SI, AX
+	ADDQ DI, CX
+	DECQ BX
+	JNZ  row
+	VZEROUPPER
+	RET
+
+// func faintAVX2(src *float64, n int, floor float64) (some int, below int)
+// Requires: AVX
+TEXT ·faintAVX2(SB), NOSPLIT, $0-40
+	MOVQ         src+0(FP), AX
+	MOVQ         n+8(FP), CX
+	VBROADCASTSD floor+16(FP), Y0
+	VXORPD       Y1, Y1, Y1
+	VXORPD       Y2, Y2, Y2
+	VXORPD       Y3, Y3, Y3
+
+four:
+	VMOVUPD   (AX), Y4
+	VCMPPD    $0x1e, Y1, Y4, Y5
+	VCMPPD    $0x11, Y0, Y4, Y4
+	VANDPD    Y5, Y4, Y4
+	VORPD     Y5, Y2, Y2
+	VORPD     Y4, Y3, Y3
+	ADDQ      $0x20, AX
+	SUBQ      $0x04, CX
+	JNZ       four
+	VMOVMSKPD Y2, AX
+	VMOVMSKPD Y3, CX
+	MOVLQSX   AX, AX
+	MOVQ      AX, some+24(FP)
+	MOVLQSX   CX, AX
+	MOVQ      AX, below+32(FP)
+	VZEROUPPER
+	RET
+
 DATA half<>+0(SB)/8, $0x3fe0000000000000
 DATA half<>+8(SB)/8, $0x3fe0000000000000
 DATA half<>+16(SB)/8, $0x3fe0000000000000

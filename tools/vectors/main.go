@@ -20,6 +20,8 @@ func main() {
 	combineRows()
 	weighRows()
 	widen()
+	copyBlock()
+	faint()
 	c := constants()
 	weigh(c)
 	logNormal(c)
