@@ -37,6 +37,7 @@ type Workspace struct {
 	tiles         tileSpace
 	slices        sliceSpace
 
+	tempered    tempered
 	foretell    *Predictive
 	predictions predictions
 }

@@ -295,6 +295,9 @@ func (ts *tileSpace) sorted(at []TileAt) []TileAt {
 
 // occupied returns the first and last column and row with mass.
 func occupied(tile []float64) (lo, hi TileAt, any bool) {
+	if tile[0] > 0 && tile[tileCells-1] > 0 {
+		return TileAt{}, TileAt{TileSide - 1, TileSide - 1}, true
+	}
 	lo, hi = TileAt{TileSide, TileSide}, TileAt{-1, -1}
 	for r := range int32(TileSide) {
 		row := tile[r*TileSide : (r+1)*TileSide]

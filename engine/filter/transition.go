@@ -51,25 +51,34 @@ func (g *gaussian) advance(t *transition, add, q []float64) {
 func (g *gaussian) apply(t *transition) {
 	var c [MaxK][MaxK]float64 // C fᵀ of each row f
 	var mean [MaxK]float64
+	k := t.k
 	for a := range t.n {
-		ca := &c[a]
+		ca := c[a][:k]
+		m := 0.0
 		for x := range t.size[a] {
 			j, v := t.col[a][x], t.value[a][x]
-			mean[a] += float64(v * g.mean[j])
-			for i := range t.k {
-				ca[i] += float64(v * g.at(i, j))
+			m += float64(v * g.mean[j])
+			row := g.cov[Packed(j, 0):][:j+1] // C of j and those up to it
+			for i, r := range row {
+				ca[i] += float64(v * r)
+			}
+			at := Packed(j+1, j)
+			for i := j + 1; i < k; i++ {
+				ca[i] += float64(v * g.cov[at])
+				at += i + 1
 			}
 		}
+		mean[a] = m
 	}
 	for a := range t.n {
 		r := t.row[a]
 		g.mean[r] = mean[a]
-		for i := range t.k {
-			if i < r {
-				g.cov[Packed(r, i)] = c[a][i]
-			} else {
-				g.cov[Packed(i, r)] = c[a][i]
-			}
+		ca := c[a][:k]
+		copy(g.cov[Packed(r, 0):][:r], ca)
+		at := Packed(r, r)
+		for i := r; i < k; i++ {
+			g.cov[at] = ca[i]
+			at += i + 1
 		}
 	}
 	for a := range t.n { // between two such quantities, fᵢ C fⱼᵀ

@@ -78,6 +78,10 @@ func (b *Belief) condition(space Space, l any, w *Workspace) {
 		if p := w.asked(); p != nil {
 			b.foretell(p, l, &noise, w)
 		}
+		if nw.tempered() {
+			b.conditionTempered(&nw, w)
+			return
+		}
 		w.out.empty(n, k)
 		var g gaussian
 		for i := range n {

@@ -41,3 +41,7 @@ func copyBlock(dst, src []float64, cols, rows, to, from int) {
 }
 
 func faint(src []float64, floor float64) (some, below bool) { return faintPlain(src, floor, 0) }
+
+func logs(dst, src []float64) { logsPlain(dst, src, 0) }
+
+func exps(dst, src []float64) { expsPlain(dst, src, 0) }

@@ -127,3 +127,23 @@ func faint(src []float64, floor float64) (some, below bool) {
 	a, b := faintPlain(src, floor, n)
 	return some || a, below || b
 }
+
+func logs(dst, src []float64) {
+	n := 0
+	if vectors {
+		if n = len(dst) &^ 3; n > 0 {
+			logsAVX2(&dst[0], &src[0], n)
+		}
+	}
+	logsPlain(dst, src, n)
+}
+
+func exps(dst, src []float64) {
+	n := 0
+	if vectors {
+		if n = len(dst) &^ 3; n > 0 {
+			expsAVX2(&dst[0], &src[0], n)
+		}
+	}
+	expsPlain(dst, src, n)
+}

@@ -183,3 +183,30 @@ func TestBlockBits(t *testing.T) {
 		}
 	}
 }
+
+// TestLogsBits compares Logs and Exps with plain Go, for every length of a tail.
+func TestLogsBits(t *testing.T) {
+	const seed = 10
+	rng := rand.New(rand.NewPCG(seed, 1))
+	for i := range 400 {
+		src, got, want := make([]float64, i%11), make([]float64, i%11), make([]float64, i%11)
+		for j := range src {
+			src[j] = math.Exp(600 * rng.NormFloat64())
+			if i%7 == 0 && rng.IntN(3) == 0 {
+				src[j] = []float64{0, 5e-324, 1e-310, math.Inf(1), 1}[rng.IntN(5)]
+			}
+		}
+		Logs(got, src)
+		logsPlain(want, src, 0)
+		sameBits(t, "Logs", got, want)
+		for j := range src {
+			src[j] = -800 * rng.Float64() * rng.Float64()
+			if rng.IntN(9) == 0 {
+				src[j] = []float64{0, math.Inf(-1), -745.13, -745.2, -708.5}[rng.IntN(5)]
+			}
+		}
+		Exps(got, src)
+		expsPlain(want, src, 0)
+		sameBits(t, "Exps", got, want)
+	}
+}

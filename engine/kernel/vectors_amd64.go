@@ -63,3 +63,13 @@ func logNormalAVX2(dst *float64, residual *float64, variance *float64, n int, lo
 //
 //go:noescape
 func logAddAVX2(dst *float64, n int, log float64)
+
+// logsAVX2 is logsPlain for n values, a multiple of 4, that are normal numbers above 0.
+//
+//go:noescape
+func logsAVX2(dst *float64, src *float64, n int)
+
+// expsAVX2 is expsPlain for n values, a multiple of 4.
+//
+//go:noescape
+func expsAVX2(dst *float64, src *float64, n int)

@@ -1478,3 +1478,136 @@ next:
 done:
 	VZEROUPPER
 	RET
+
+// func logsAVX2(dst *float64, src *float64, n int)
+// Requires: AVX, AVX2
+TEXT ·logsAVX2(SB), NOSPLIT, $0-24
+	MOVQ dst+0(FP), AX
+	MOVQ src+8(FP), CX
+	MOVQ n+16(FP), DX
+
+next:
+	TESTQ   DX, DX
+	JZ      done
+	VMOVUPD (CX), Y0
+	VPSRLQ  $0x34, Y0, Y1
+	VPOR    float52<>+0(SB), Y1, Y1
+	VSUBPD  halfBits<>+0(SB), Y1, Y1
+	VPAND   fraction<>+0(SB), Y0, Y0
+	VPOR    halfExponent<>+0(SB), Y0, Y0
+	VCMPPD  $0x01, rootHalf<>+0(SB), Y0, Y2
+	VANDPD  Y2, Y0, Y3
+	VADDPD  Y3, Y0, Y0
+	VANDPD  one<>+0(SB), Y2, Y3
+	VSUBPD  Y3, Y1, Y1
+	VSUBPD  one<>+0(SB), Y0, Y0
+	VADDPD  two<>+0(SB), Y0, Y3
+	VDIVPD  Y3, Y0, Y3
+	VMULPD  Y3, Y3, Y4
+	VMULPD  log23<>+0(SB), Y4, Y2
+	VADDPD  log21<>+0(SB), Y2, Y2
+	VMULPD  Y4, Y2, Y2
+	VADDPD  log19<>+0(SB), Y2, Y2
+	VMULPD  Y4, Y2, Y2
+	VADDPD  log17<>+0(SB), Y2, Y2
+	VMULPD  Y4, Y2, Y2
+	VADDPD  log15<>+0(SB), Y2, Y2
+	VMULPD  Y4, Y2, Y2
+	VADDPD  log13<>+0(SB), Y2, Y2
+	VMULPD  Y4, Y2, Y2
+	VADDPD  log11<>+0(SB), Y2, Y2
+	VMULPD  Y4, Y2, Y2
+	VADDPD  log9<>+0(SB), Y2, Y2
+	VMULPD  Y4, Y2, Y2
+	VADDPD  log7<>+0(SB), Y2, Y2
+	VMULPD  Y4, Y2, Y2
+	VADDPD  log5<>+0(SB), Y2, Y2
+	VMULPD  Y4, Y2, Y2
+	VADDPD  log3<>+0(SB), Y2, Y2
+	VMULPD  Y4, Y2, Y2
+	VADDPD  Y2, Y2, Y2
+	VSUBPD  Y2, Y0, Y2
+	VMULPD  Y3, Y2, Y2
+	VMULPD  ln2Low<>+0(SB), Y1, Y3
+	VSUBPD  Y3, Y2, Y2
+	VSUBPD  Y0, Y2, Y2
+	VMULPD  ln2High<>+0(SB), Y1, Y1
+	VSUBPD  Y2, Y1, Y1
+	VMOVUPD Y1, (AX)
+	ADDQ    $0x20, AX
+	ADDQ    $0x20, CX
+	SUBQ    $0x04, DX
+	JMP     next
+
+done:
+	VZEROUPPER
+	RET
+
+// func expsAVX2(dst *float64, src *float64, n int)
+// Requires: AVX, AVX2
+TEXT ·expsAVX2(SB), NOSPLIT, $0-24
+	MOVQ dst+0(FP), AX
+	MOVQ src+8(FP), CX
+	MOVQ n+16(FP), DX
+
+next:
+	TESTQ      DX, DX
+	JZ         done
+	VMOVUPD    (CX), Y0
+	VCMPPD     $0x0d, expLeast<>+0(SB), Y0, Y1
+	VMAXPD     expClamp<>+0(SB), Y0, Y0
+	VMULPD     perLn2<>+0(SB), Y0, Y2
+	VADDPD     half<>+0(SB), Y2, Y2
+	VROUNDPD   $0x09, Y2, Y2
+	VMULPD     ln2High<>+0(SB), Y2, Y3
+	VSUBPD     Y3, Y0, Y0
+	VMULPD     ln2Low<>+0(SB), Y2, Y3
+	VSUBPD     Y3, Y0, Y0
+	VMULPD     exp13<>+0(SB), Y0, Y4
+	VADDPD     exp12<>+0(SB), Y4, Y4
+	VMULPD     Y0, Y4, Y4
+	VADDPD     exp11<>+0(SB), Y4, Y4
+	VMULPD     Y0, Y4, Y4
+	VADDPD     exp10<>+0(SB), Y4, Y4
+	VMULPD     Y0, Y4, Y4
+	VADDPD     exp9<>+0(SB), Y4, Y4
+	VMULPD     Y0, Y4, Y4
+	VADDPD     exp8<>+0(SB), Y4, Y4
+	VMULPD     Y0, Y4, Y4
+	VADDPD     exp7<>+0(SB), Y4, Y4
+	VMULPD     Y0, Y4, Y4
+	VADDPD     exp6<>+0(SB), Y4, Y4
+	VMULPD     Y0, Y4, Y4
+	VADDPD     exp5<>+0(SB), Y4, Y4
+	VMULPD     Y0, Y4, Y4
+	VADDPD     exp4<>+0(SB), Y4, Y4
+	VMULPD     Y0, Y4, Y4
+	VADDPD     exp3<>+0(SB), Y4, Y4
+	VMULPD     Y0, Y4, Y4
+	VADDPD     exp2<>+0(SB), Y4, Y4
+	VMULPD     Y0, Y4, Y4
+	VMULPD     Y0, Y4, Y4
+	VADDPD     Y0, Y4, Y4
+	VADDPD     one<>+0(SB), Y4, Y4
+	VMAXPD     expLowest<>+0(SB), Y2, Y0
+	VSUBPD     Y0, Y2, Y2
+	VCVTPD2DQY Y0, X0
+	VPMOVSXDQ  X0, Y3
+	VPADDQ     expBias<>+0(SB), Y3, Y3
+	VPSLLQ     $0x34, Y3, Y3
+	VMULPD     Y3, Y4, Y4
+	VCVTPD2DQY Y2, X0
+	VPMOVSXDQ  X0, Y3
+	VPADDQ     expBias<>+0(SB), Y3, Y3
+	VPSLLQ     $0x34, Y3, Y3
+	VMULPD     Y3, Y4, Y4
+	VANDPD     Y1, Y4, Y4
+	VMOVUPD    Y4, (AX)
+	ADDQ       $0x20, AX
+	ADDQ       $0x20, CX
+	SUBQ       $0x04, DX
+	JMP        next
+
+done:
+	VZEROUPPER
+	RET

@@ -73,3 +73,30 @@ func logAdd(c *numbers) {
 		VMOVUPD(x, Mem{Base: dst})
 	}, dst)
 }
+
+// logs is kernel.Logs, exps kernel.Exps.
+func logs(c *numbers) {
+	TEXT("logsAVX2", NOSPLIT, "func(dst, src *float64, n int)")
+	Pragma("noescape")
+	Doc("logsAVX2 is logsPlain for n values, a multiple of 4, that are normal numbers above 0.")
+	dst, src, n := Load(Param("dst"), GP64()), Load(Param("src"), GP64()), Load(Param("n"), GP64())
+	loop(n, func() {
+		x := YMM()
+		VMOVUPD(Mem{Base: src}, x)
+		VMOVUPD(c.log(x), Mem{Base: dst})
+	}, dst, src)
+}
+
+func exps(c *numbers) {
+	TEXT("expsAVX2", NOSPLIT, "func(dst, src *float64, n int)")
+	Pragma("noescape")
+	Doc("expsAVX2 is expsPlain for n values, a multiple of 4.")
+	dst, src, n := Load(Param("dst"), GP64()), Load(Param("src"), GP64()), Load(Param("n"), GP64())
+	loop(n, func() {
+		x := YMM()
+		VMOVUPD(Mem{Base: src}, x)
+		e, keep := c.exp(x)
+		VANDPD(keep, e, e)
+		VMOVUPD(e, Mem{Base: dst})
+	}, dst, src)
+}

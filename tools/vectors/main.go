@@ -26,5 +26,7 @@ func main() {
 	weigh(c)
 	logNormal(c)
 	logAdd(c)
+	logs(c)
+	exps(c)
 	Generate()
 }
