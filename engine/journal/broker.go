@@ -166,6 +166,26 @@ func (b *broker) close() {
 // when its disk is full.
 func (b *broker) up() bool { return b.within == nil || b.within.JetStreamEnabled() }
 
+// streamSoon is stream for a broker that may just have started: nobody answers while a
+// cluster has no leader, and a question from then is never answered.
+func (b *broker) streamSoon(ctx context.Context, o *Options) (jetstream.Stream, *jetstream.StreamInfo, error) {
+	for {
+		ask, asked := context.WithTimeout(ctx, callTimeout)
+		st, info, err := b.stream(ask, o)
+		asked()
+		var api *jetstream.APIError
+		none := errors.Is(err, context.DeadlineExceeded) || errors.Is(err, nats.ErrNoResponders) || errors.As(err, &api) && api.Code == 503
+		if !none {
+			return st, info, err
+		}
+		select {
+		case <-time.After(longestPause):
+		case <-ctx.Done():
+			return nil, nil, err
+		}
+	}
+}
+
 // stream opens the journal's stream, or makes it.
 func (b *broker) stream(ctx context.Context, o *Options) (jetstream.Stream, *jetstream.StreamInfo, error) {
 	st, err := b.js.Stream(ctx, streamName)

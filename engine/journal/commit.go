@@ -77,7 +77,7 @@ const tries = 8
 // publish gives the pack in p.buf to the broker, and finds out whether it is in
 // where the broker does not say. in says that a pack is, with or without an error.
 func (p *partition) publish(ctx context.Context, next *pack) (sequence uint64, in bool, err error) {
-	unknown := false // some try may come through yet
+	unknown, quick := false, 0 // some try may come through yet
 	for try := 1; ; try++ {
 		sequence, err := p.j.log.Publish(ctx, p.index, p.buf, p.j.writer, p.last)
 		if err == nil {
@@ -109,6 +109,12 @@ func (p *partition) publish(ctx context.Context, next *pack) (sequence uint64, i
 			return p.replace(ctx, next, refusal)
 		case refusal != nil:
 			return 0, false, refusal
+		}
+		if errors.Is(err, jetstream.ErrNoStreamResponse) && quick < tries*tries { // said at once, while brokers elect
+			quick, try = quick+1, try-1
+			if p.j.log.Wait(ctx, longestPause); ctx.Err() != nil {
+				return 0, false, ErrClosed
+			}
 		}
 	}
 }

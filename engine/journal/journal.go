@@ -95,7 +95,7 @@ func Open(ctx context.Context, o Options, take func(Record) error) (*Journal, *F
 	// A broker that has just started may be reading its files still.
 	starting, started := context.WithTimeout(ctx, startTimeout)
 	defer started()
-	st, info, err := b.stream(starting, &o)
+	st, info, err := b.streamSoon(starting, &o)
 	if err != nil {
 		return fail(err)
 	}
