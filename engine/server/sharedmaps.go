@@ -16,6 +16,13 @@ import (
 // that it has at the broker, by fingerprint, and fetches what a drive needs. A name
 // stands for the same map at all of them.
 
+// A map that cannot be stored, as while the brokers of a cluster elect, is tried again
+// after a wait that doubles from the first to the last of these.
+const (
+	shareAgainFirst = 200 * time.Millisecond
+	shareAgainLast  = 30 * time.Second
+)
+
 // mapTimeout bounds storing or fetching a map.
 const mapTimeout = 5 * time.Minute
 
@@ -30,12 +37,27 @@ type sharedMaps struct {
 // shareMaps stores the maps that this server was started with, and fetches those that
 // others have named.
 func (s *Server) shareMaps(ctx context.Context) {
-	for _, name := range s.atlas.names() {
-		if m := s.atlas.acquire(name); m != nil {
-			if err := s.shareMap(ctx, m.Map, false); err != nil && ctx.Err() == nil {
-				s.cfg.Log.Error("map is not shared with other servers", "map", name, "error", err)
+	left := s.atlas.names()
+	for wait := shareAgainFirst; ; wait = min(2*wait, shareAgainLast) {
+		left = slices.DeleteFunc(left, func(name string) bool {
+			m := s.atlas.acquire(name)
+			if m == nil {
+				return true
 			}
-			s.releaseMap(m)
+			defer s.releaseMap(m)
+			err := s.shareMap(ctx, m.Map, false)
+			if err != nil && ctx.Err() == nil {
+				s.cfg.Log.Error("map is not shared with other servers yet", "map", name, "error", err)
+			}
+			return err == nil
+		})
+		if len(left) == 0 {
+			break
+		}
+		select {
+		case <-time.After(wait):
+		case <-ctx.Done():
+			return
 		}
 	}
 	names, err := s.shared.maps.Names(ctx)
