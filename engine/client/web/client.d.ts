@@ -139,6 +139,11 @@ export class Client {
     }>>;
     patienceS: number;
     /**
+     * Goes to another server, where there is one, unless that has been done since.
+     * @param {unknown} calls what a call failed over
+     */
+    turn(calls: unknown): void;
+    /**
      * Says where vehicles are.
      * @param {string[]} vehicles
      * @param {WhereWishes} [wishes] further fields of WhereRequest

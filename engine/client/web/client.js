@@ -60,6 +60,12 @@ export class Client {
   }
 
   /**
+   * Goes to another server, where there is one, unless that has been done since.
+   * @param {unknown} calls what a call failed over
+   */
+  turn(calls) {}
+
+  /**
    * Says where vehicles are.
    * @param {string[]} vehicles
    * @param {WhereWishes} [wishes] further fields of WhereRequest
@@ -80,8 +86,9 @@ export class Client {
     let resumeToken = wishes?.resumeToken ?? "";
     for (let tries = 1; ; tries++) {
       const began = Date.now();
+      const calls = this.calls;
       try {
-        for await (const news of this.calls.follow({ ...wishes, vehicles, resumeToken }, options)) {
+        for await (const news of calls.follow({ ...wishes, vehicles, resumeToken }, options)) {
           resumeToken = news.resumeToken;
           yield news;
         }
@@ -90,6 +97,7 @@ export class Client {
         if (Date.now() > began + 5000) tries = 1;
         if (ConnectError.from(e).code === Code.InvalidArgument && resumeToken) resumeToken = ""; // the server has begun anew
         else if (!away(e) || tries > this.patienceS) throw e;
+        else this.turn(calls);
         await sleep(1000);
       }
     }

@@ -9,10 +9,11 @@
 //
 // Headers and measurements are messages, or objects written as in drive files.
 import { create, fromJson } from "@bufbuild/protobuf";
-import { ConnectError } from "@connectrpc/connect";
+import { ConnectError, createClient } from "@connectrpc/connect";
 import { Http2SessionManager, createGrpcTransport } from "@connectrpc/connect-node";
 import { Client, away, shows, sleep } from "./client.js";
 import { DriveHeaderSchema } from "./leadline/v1/drive_pb.js";
+import { PositionService } from "./leadline/v1/service_pb.js";
 import { FeedRequestSchema, OpenSchema, OpenedSchema, Reply } from "./leadline/v1/feed_pb.js";
 import { SensorMeasurementSchema } from "./leadline/v1/measurement_pb.js";
 
@@ -24,8 +25,9 @@ import { SensorMeasurementSchema } from "./leadline/v1/measurement_pb.js";
  */
 
 /**
- * Connects a program to a server.
- * @param {string} address HOST:PORT
+ * Connects a program to a server, or to one of several that share their vehicles: to
+ * another one when a call says that one is away or cut off.
+ * @param {string} address HOST:PORT, of several with commas between them
  * @param {Security} [security]
  */
 export const connect = (address, security = {}) => new NodeClient(address, security);
@@ -41,13 +43,47 @@ class NodeClient extends Client {
    */
   constructor(address, { tls = false, ca, cert, key, token }) {
     const encrypted = tls || ca || cert || key;
-    if (token && !encrypted && !/^(127\.0\.0\.1|\[::1\]|localhost):\d+$/.test(address))
+    const addresses = address.split(",").map((a) => a.trim());
+    if (token && !encrypted && !addresses.every((a) => /^(127\.0\.0\.1|\[::1\]|localhost):\d+$/.test(a)))
       throw new Error("a token would go in the clear to another machine: give tls");
-    const baseUrl = (encrypted ? "https://" : "http://") + address;
-    const session = new Http2SessionManager(baseUrl, { pingIntervalMs: 30_000, pingTimeoutMs: 10_000 }, encrypted ? { ca, cert, key } : {});
-    super(createGrpcTransport({ baseUrl, sessionManager: session, interceptors: shows(token) }));
+    // A server that is cut off ends no connection: it is asked, and the connection given up without an answer.
+    const asks = { pingIntervalMs: 11_000, pingTimeoutMs: 5_000 };
+    let session;
+    const transport = () => {
+      const baseUrl = (encrypted ? "https://" : "http://") + addresses[0];
+      session = new Http2SessionManager(baseUrl, asks, encrypted ? { ca, cert, key } : {});
+      return createGrpcTransport({ baseUrl, sessionManager: session, interceptors: shows(token) });
+    };
+    // Not all vehicles begin with the same one.
+    addresses.push(...addresses.splice(0, Math.floor(Math.random() * addresses.length)));
+    super(transport());
+    /** @param {unknown} calls */
+    this.turn = (calls) => {
+      if (addresses.length === 1 || calls !== this.calls) return;
+      session.abort();
+      addresses.push(/** @type {string} */ (addresses.shift()));
+      this.calls = createClient(PositionService, transport());
+    };
     /** Closes the connection. */
     this.close = () => session.abort();
+  }
+
+  /**
+   * Says where vehicles are: see Client.
+   * @param {string[]} vehicles
+   * @param {import("./client.js").WhereWishes} [wishes]
+   * @param {import("@connectrpc/connect").CallOptions} [options]
+   */
+  async where(vehicles, wishes, options) {
+    const calls = this.calls;
+    try {
+      return await super.where(vehicles, wishes, options);
+    } catch (e) {
+      if (!away(e)) throw e;
+      this.turn(calls);
+      if (calls === this.calls) throw e;
+      return super.where(vehicles, wishes, options);
+    }
   }
 
   /**
@@ -72,6 +108,7 @@ class Drive {
   /** Batches that were sent. */
   sent = 0n;
   #lost = false;
+  /** @type {unknown} What its stream goes over. */ #calls;
   #requests = new Queue();
   /** @type {AsyncIterator<any>} */ #responses = (async function* () {})();
 
@@ -93,6 +130,7 @@ class Drive {
 
   async connect() {
     this.#requests = new Queue();
+    this.#calls = this.client.calls;
     this.#responses = this.client.calls.feed(this.#requests)[Symbol.asyncIterator]();
     this.#requests.push({ case: "open", value: this.opening });
     const first = (await this.#responses.next()).value;
@@ -152,6 +190,7 @@ class Drive {
         if (!(e instanceof ConnectError) || !away(e) || Date.now() > until) throw e;
         this.leave();
         this.#lost = true;
+        this.client.turn(this.#calls);
         await sleep(1000);
       }
     }

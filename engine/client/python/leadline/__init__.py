@@ -15,7 +15,9 @@ and details() say what was wrong. It needs the packages grpcio and protobuf.
 An aid and not certified: a position may be wrong although it is called located.
 """
 import queue
+import random
 import secrets
+import threading
 import time
 
 import grpc
@@ -26,7 +28,8 @@ from leadline import v1
 _SERVICE = "/leadline.v1.PositionService/"
 _OPTIONS = [
     ("grpc.max_receive_message_length", 16 << 20), ("grpc.max_reconnect_backoff_ms", 2_000),
-    ("grpc.keepalive_time_ms", 30_000), ("grpc.keepalive_timeout_ms", 10_000),
+    # What the other machine does not take in time ends the connection, too: one that is cut off ends none.
+    ("grpc.keepalive_time_ms", 11_000), ("grpc.keepalive_timeout_ms", 5_000),
 ]
 
 
@@ -39,24 +42,48 @@ def _read(path):
         return f.read()
 
 
+def _away(e, deadline=False):
+    """Whether an error says that another try, or another server, may do. A call over a channel that was left is
+    cancelled."""
+    codes = [grpc.StatusCode.UNAVAILABLE, grpc.StatusCode.CANCELLED]
+    return e.code() in codes or deadline and e.code() == grpc.StatusCode.DEADLINE_EXCEEDED
+
+
 class Client:
-    """A connection to a server. patience_s is how long to try again when it is away. With tls it is encrypted,
+    """A connection to a server, HOST:PORT, or to one of several that share their vehicles, with commas between
+    them: to another one when a call says that one is away or cut off. patience_s is how long to try again when it is away. With tls it is encrypted,
     and with a file of authorities, ca, or of one's own certificate, cert and key; all PEM. token is a bearer
     token, or a function that gives one for each call; without encryption it goes to this machine alone."""
 
     def __init__(self, address, patience_s=60, tls=False, ca=None, cert=None, key=None, token=None):
-        self.patience_s, self._token = patience_s, token
-        if tls or ca or cert or key:
-            secure = grpc.ssl_channel_credentials(*(_read(f) if f else None for f in (ca, key, cert)))
-            self._channel = grpc.secure_channel(address, secure, options=_OPTIONS)
-        elif token and address.rpartition(":")[0] not in ("127.0.0.1", "[::1]", "localhost"):
+        self.patience_s, self._token, self._turning = patience_s, token, threading.Lock()
+        self._addresses = [a.strip() for a in address.split(",")]
+        random.shuffle(self._addresses)  # so that not all vehicles begin with the same one
+        encrypted = tls or ca or cert or key
+        if token and not encrypted and any(a.rpartition(":")[0] not in ("127.0.0.1", "[::1]", "localhost") for a in self._addresses):
             raise ValueError("a token would go in the clear to another machine: give tls=True")
+        self._secure = grpc.ssl_channel_credentials(*(_read(f) if f else None for f in (ca, key, cert))) if encrypted else None
+        self._dial()
+
+    def _dial(self):
+        if self._secure:
+            self._channel = grpc.secure_channel(self._addresses[0], self._secure, options=_OPTIONS)
         else:
-            self._channel = grpc.insecure_channel(address, options=_OPTIONS)
+            self._channel = grpc.insecure_channel(self._addresses[0], options=_OPTIONS)
         call = lambda kind, name, request, response: kind(_SERVICE + name, request.SerializeToString, response.FromString)
         self._feed = call(self._channel.stream_stream, "Feed", v1.FeedRequest, v1.FeedResponse)
         self._where = call(self._channel.unary_unary, "Where", v1.WhereRequest, v1.WhereResponse)
         self._follow = call(self._channel.unary_stream, "Follow", v1.FollowRequest, v1.FollowResponse)
+
+    def _turn(self, channel):
+        """Goes to the next server, unless that has been done since a call of a channel failed. Other calls over
+        that one end, and are made again."""
+        with self._turning:
+            if len(self._addresses) == 1 or channel is not self._channel:
+                return
+            self._addresses.append(self._addresses.pop(0))
+            self._dial()
+        channel.close()
 
     def __enter__(self):
         return self
@@ -71,13 +98,23 @@ class Client:
 
     def where(self, *vehicles, timeout_s=10, **wishes):
         """Says where vehicles are; wishes are further fields of WhereRequest."""
-        return self._where(v1.WhereRequest(vehicles=vehicles, **wishes), timeout=timeout_s, metadata=self._shown())
+        request, until = v1.WhereRequest(vehicles=vehicles, **wishes), time.monotonic() + timeout_s
+        for left in reversed(range(len(self._addresses))):
+            channel = self._channel
+            try:
+                timeout = max(until - time.monotonic(), 0) / (left + 1)
+                return self._where(request, timeout=timeout, metadata=self._shown())
+            except grpc.RpcError as e:
+                if not left or not _away(e, deadline=True):
+                    raise
+                self._turn(channel)
 
     def follow(self, *vehicles, **wishes):
         """Tells of vehicles as they move on, of all if none is named; wishes are further fields of
         FollowRequest. When the stream breaks, it goes on after what has been told."""
         request, tries = v1.FollowRequest(vehicles=vehicles, **wishes), 0
         while True:
+            channel = self._channel
             stream, began = self._follow(request, metadata=self._shown()), time.monotonic()
             try:
                 for news in stream:
@@ -88,8 +125,9 @@ class Client:
                 tries = tries + 1 if time.monotonic() < began + 5 else 1
                 if e.code() == grpc.StatusCode.INVALID_ARGUMENT and request.resume_token:
                     request.resume_token = ""  # the server has begun anew
-                elif e.code() != grpc.StatusCode.UNAVAILABLE or tries > self.patience_s:
+                elif not _away(e) or tries > self.patience_s:
                     raise
+                self._turn(channel)
                 time.sleep(1)
             finally:
                 stream.cancel()
@@ -123,6 +161,7 @@ class Drive:
 
     def _connect(self):
         self._requests, self._lost = queue.SimpleQueue(), False
+        self._channel = self._client._channel
         self._stream = self._client._feed(iter(self._requests.get, None), metadata=self._client._shown())
         self._requests.put(v1.FeedRequest(open=self._opening))
         try:
@@ -163,8 +202,9 @@ class Drive:
                         return posteriors, response.closed
                 raise RuntimeError("the server ended the stream without a word")
             except grpc.RpcError as e:
-                if e.code() != grpc.StatusCode.UNAVAILABLE or time.monotonic() > until:
+                if not _away(e) or time.monotonic() > until:
                     raise
                 self.__exit__()
+                self._client._turn(self._channel)
                 self._lost = True
                 time.sleep(1)
