@@ -9,6 +9,7 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
+	"slices"
 	"strings"
 	"sync"
 	"syscall"
@@ -157,6 +158,7 @@ type tab struct {
 	// Guarded by browser.mu.
 	complaints []string
 	requests   []string
+	held       []string // answers that are not let through
 }
 
 func (p *tab) hear(method string, params json.RawMessage) {
@@ -168,7 +170,8 @@ func (p *tab) hear(method string, params json.RawMessage) {
 			Text      string
 			Exception struct{ Description string }
 		}
-		Request struct{ URL string }
+		Request   struct{ URL string }
+		RequestID string
 	}
 	_ = json.Unmarshal(params, &m)
 	switch {
@@ -180,6 +183,8 @@ func (p *tab) hear(method string, params json.RawMessage) {
 		p.complaints = append(p.complaints, m.Entry.Text+" "+m.Entry.URL)
 	case method == "Network.requestWillBeSent":
 		p.requests = append(p.requests, m.Request.URL)
+	case method == "Fetch.requestPaused":
+		p.held = append(p.held, m.RequestID)
 	}
 }
 
@@ -392,6 +397,36 @@ func (p *tab) looks(name string) {
 			p.shoot(name + "-" + size.name + "-" + scheme)
 		}
 	}
+}
+
+// hold keeps answers from addresses of a pattern back until the function that it returns is
+// called, which waits for one first.
+func (p *tab) hold(pattern string) (release func()) {
+	p.t.Helper()
+	p.do("Fetch.enable", map[string]any{"patterns": []map[string]any{{"urlPattern": pattern, "requestStage": "Response"}}}, nil)
+	return func() {
+		p.t.Helper()
+		var held []string
+		for end := time.Now().Add(patience); len(held) == 0; time.Sleep(10 * time.Millisecond) {
+			p.mu.Lock()
+			held = slices.Clone(p.held)
+			p.mu.Unlock()
+			if time.Now().After(end) {
+				p.t.Fatalf("nothing came from %s", pattern)
+			}
+		}
+		for _, id := range held {
+			p.do("Fetch.continueRequest", map[string]any{"requestId": id}, nil)
+		}
+		p.do("Fetch.disable", nil, nil)
+	}
+}
+
+// asked are the addresses that the page has asked for.
+func (p *tab) asked() []string {
+	p.mu.Lock()
+	defer p.mu.Unlock()
+	return slices.Clone(p.requests)
 }
 
 // clean proves that the page complained of nothing, but for what has these

@@ -72,8 +72,15 @@ func TestEnding(t *testing.T) {
 
 	p := b.open(t, r.origin+"/#now/van", 1440, 900, false)
 	p.says(".identity", "enter your token")
+	late := p.hold("*/Trail")
 	p.show(token("Ada", 2*time.Second-10*time.Second, "dispatcher", "administrator")) // clocks may differ by 10 s
 	p.says(".identity", "Your identity has expired or is not known here: enter a new token.")
+	// What was asked for while it was taken is answered after: that says nothing of now.
+	late()
+	p.await("it is answered", "document.querySelector('.plot') && new Promise(done => setTimeout(done, 100, true))")
+	if !eval[bool](p, "!!document.querySelector('[name=token]')") {
+		t.Error("an answer of before has put the question for a token away")
+	}
 	p.show(token("Ada", time.Hour, "dispatcher"))
 	p.says(".connection", "Live.")
 

@@ -66,6 +66,12 @@ func TestTraffic(t *testing.T) {
 	p := b.open(t, r.origin+"/#traffic", 1440, 900, false)
 	p.says("main .side", "No road is heard here yet.")
 	p.audit("no road")
+	// Nobody asks again whether one has come: the server says so.
+	asked := p.asked()
+	time.Sleep(4500 * time.Millisecond)
+	if got := p.asked()[len(asked):]; len(got) > 0 {
+		t.Errorf("while there is no road the page asks %q", got)
+	}
 
 	f := r.open(scene.Drive, scene.Name, nil)
 	const seconds = 95
@@ -98,8 +104,16 @@ func TestTraffic(t *testing.T) {
 			}
 		}
 	}
+	all := func(evs []sensor.Event) {
+		t.Helper()
+		for ask(0.5, 60).GetAccepted() < uint64(len(evs)) {
+			time.Sleep(10 * time.Millisecond)
+		}
+		p.says("main .side", fmt.Sprintf("%d taken", len(evs)))
+	}
 	p.says("#traffic-answer", "vehicle")
 	p.says("main .side h2", scene.Name)
+	all(upTo(scene.Drive, seconds))
 	at := ask(0.5, 3600)
 	p.says("main .side", at.GetTime().AsTime().Format("15:04:05"))
 	if len(at.GetVehicles()) == 0 || at.GetLines()[0].GetForward() == 0 {
@@ -155,10 +169,7 @@ func TestTraffic(t *testing.T) {
 	// It moves on as bearings come.
 	stamp := eval[string](p, "document.querySelector('.pairs dd').innerText")
 	r.send(f, upTo(scene.Drive, 110)[len(upTo(scene.Drive, seconds)):])
-	for ask(0.5, 60).GetAccepted() < uint64(len(upTo(scene.Drive, 110))) {
-		time.Sleep(10 * time.Millisecond)
-	}
-	p.says("main .side", fmt.Sprintf("%d taken", len(upTo(scene.Drive, 110))))
+	all(upTo(scene.Drive, 110))
 	p.await("it has moved on", fmt.Sprintf("document.querySelector('.pairs dd').innerText !== %q", stamp))
 	same(ask(0.1, 60))
 
@@ -206,6 +217,9 @@ func TestTraffic(t *testing.T) {
 	p.says("#traffic-trouble", "The server does not answer. What is shown is")
 	r = serve(t, r.address, change)
 	p.says("#traffic-trouble", fmt.Sprintf("There is no road %q here: feed it first", scene.Name))
+	r.send(r.open(scene.Drive, scene.Name, nil), upTo(scene.Drive, 30))
+	p.says("main .side", fmt.Sprintf("%d taken", len(upTo(scene.Drive, 30))))
+	p.await("all is well", "!document.querySelector('#traffic-trouble')")
 	if title := eval[string](p, "document.title"); title != "Leadline" {
 		t.Errorf("the title is %q", title)
 	}

@@ -88,9 +88,9 @@ func namedVehicles(m any) ([]string, bool) {
 	return nil, true
 }
 
-// followedVehicles are the same; alarms are told of all.
+// followedVehicles are the same; alarms and roads are told of all.
 func followedVehicles(m any) ([]string, bool) {
-	if r, ok := m.(*leadlinev1.FollowRequest); ok && r.GetAlarms() {
+	if r, ok := m.(*leadlinev1.FollowRequest); ok && (r.GetAlarms() || r.GetRoads()) {
 		return nil, true
 	}
 	return namedVehicles(m)

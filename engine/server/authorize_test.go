@@ -324,6 +324,13 @@ func TestAlarmsAreOfAll(t *testing.T) {
 	if got := saidBy(err); got.reason != leadlinev1.Reason_REASON_NOT_ALLOWED {
 		t.Errorf("a vehicle with alarms: %+v", got)
 	}
+	st, err = api.Follow(van, &leadlinev1.FollowRequest{Vehicles: []string{"v"}, Roads: true})
+	if err == nil {
+		_, err = st.Recv()
+	}
+	if got := saidBy(err); got.reason != leadlinev1.Reason_REASON_NOT_ALLOWED {
+		t.Errorf("a vehicle with roads: %+v", got)
+	}
 	feed, err := client.Open(van, conn, client.Drive{Header: header("v"), Batch: 1})
 	if err != nil {
 		t.Fatal(err)

@@ -48,6 +48,10 @@ func (s *Server) followHere(req *leadlinev1.FollowRequest, stream grpc.ServerStr
 		defer s.alarms.leave(r)
 		alarms = r
 	}
+	roads := &roadReader{}
+	if req.GetRoads() {
+		roads = &roadReader{book: s.roads, told: map[string]*leadlinev1.FollowResponse{}}
+	}
 	token := req.GetResumeToken()
 	ctx := stream.Context()
 	timer := time.NewTimer(time.Hour)
@@ -62,6 +66,12 @@ func (s *Server) followHere(req *leadlinev1.FollowRequest, stream grpc.ServerStr
 		}
 		if a := s.alarms.take(alarms); a != nil {
 			if err := stream.Send(&leadlinev1.FollowResponse{Vehicle: a.GetVehicle(), News: &leadlinev1.FollowResponse_Alarm{Alarm: a}, ResumeToken: token}); err != nil {
+				return err
+			}
+			continue
+		}
+		if m := roads.take(); m != nil {
+			if err := stream.Send(&leadlinev1.FollowResponse{Vehicle: m.GetVehicle(), Drive: m.GetDrive(), News: m.GetNews(), ResumeToken: token}); err != nil {
 				return err
 			}
 			continue
@@ -87,6 +97,7 @@ func (s *Server) followHere(req *leadlinev1.FollowRequest, stream grpc.ServerStr
 		select {
 		case <-f.wake:
 		case <-alarms.wake:
+		case <-roads.wake:
 		case <-timer.C:
 		case <-reader:
 			return errFollowedElsewhere

@@ -25,7 +25,7 @@ func (o *owner) newSubject() *subject {
 		// take; twice that, since it costs little.
 		lateNS: int64(2e9 * (v.LateWindowS + v.HoldS)),
 	}
-	if _, road := o.sess.(*roadSession); road {
+	if o.isRoad() {
 		sub.gone, sub.end = true, &leadlinev1.Farewell{} // those who follow vehicles hear nothing of it
 	}
 	return sub
@@ -33,7 +33,9 @@ func (o *owner) newSubject() *subject {
 
 // begins has those who follow hear of a drive.
 func (s *Server) begins(o *owner) {
-	if !o.subject.gone {
+	if o.isRoad() {
+		s.roads.put(o, false)
+	} else if !o.subject.gone {
 		s.hub.begin(o.subject)
 	}
 }
@@ -49,6 +51,9 @@ func (o *owner) told(released []*summary.Posterior, withdrawn []sensor.Time) {
 // that, and why. It runs on the owner's goroutine.
 func (o *owner) farewell(ended bool, hash, why string) {
 	fw := &leadlinev1.Farewell{Ended: ended, PosteriorSha256: hash, Reason: why}
+	if ended && o.isRoad() {
+		o.srv.roads.put(o, true)
+	}
 	if ended {
 		o.srv.hub.farewell(o.subject, fw, o.extras)
 	} else {

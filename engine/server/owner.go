@@ -206,6 +206,7 @@ func (o *owner) leave() {
 			o.lastCheckpoint()
 		}
 		o.clearAlarms(why)
+		o.srv.roads.drop(o, true)
 		o.srv.hub.moved(o.subject)
 		o.srv.hub.erase(o.subject) // what waits is told from there, or has been erased there
 		return
@@ -219,6 +220,7 @@ func (o *owner) leave() {
 	} else {
 		o.srv.dropLine(o.rec.line)
 	}
+	o.srv.roads.drop(o, false)
 	o.srv.hub.forget(o.subject)
 	accepted, refused := o.counts()
 	switch {

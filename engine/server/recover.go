@@ -219,6 +219,7 @@ func (s *Server) restore(h *history) {
 	defer s.mu.Unlock()
 	if s.closed { // while a partition is taken over
 		if err == nil {
+			s.roads.drop(o, true)
 			s.hub.moved(o.subject)
 			s.releaseMap(o.m)
 		}

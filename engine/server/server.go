@@ -47,6 +47,7 @@ type Server struct {
 	readingResults  chan struct{} // and one a result being read
 	hub             *hub
 	alarms          *alarmBook
+	roads           *roadBook
 	atlas           *atlas
 	journal         *journal.Journal // nil: nothing is durable
 	shared          *shared          // nil: with no other server
@@ -167,6 +168,7 @@ func newServer(cfg Config) *Server {
 		parts:          map[string]*partsUpload{},
 		pace:           newPace(cfg.Limits.RateInAll, cfg.Limits),
 		alarms:         newAlarmBook(cfg.Now),
+		roads:          newRoadBook(),
 		atlas:          newAtlas(cfg.Maps),
 	}
 	s.load.limit, s.load.over = float64(cfg.Limits.Load), cfg.Limits.LoadOver

@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"path/filepath"
+	"slices"
 	"strings"
 	"testing"
 	"time"
@@ -157,6 +158,22 @@ func TestShareTraffic(t *testing.T) {
 		l, err := c.ListVehicles(showing(t, dispatcher), &leadlinev1.ListVehiclesRequest{Traffic: true})
 		if err != nil || len(l.GetVehicles()) != i+1 {
 			t.Errorf("listed roads: %v, %v", l, err)
+		}
+	}
+	// Which roads there are is told of all, whoever is asked.
+	for i, l := range servers {
+		ctx, cancel := context.WithCancel(showing(t, dispatcher))
+		st, err := leadlinev1.NewPositionServiceClient(dial(l.addr, client.Security{})).Follow(ctx, &leadlinev1.FollowRequest{Roads: true})
+		if err != nil {
+			t.Fatal(err)
+		}
+		got := nextRoads(t, st, len(names))
+		cancel()
+		slices.Sort(got)
+		want := []string{names[0] + " d true false", names[1] + " d true false"}
+		slices.Sort(want)
+		if !slices.Equal(got, want) {
+			t.Errorf("server %d tells of %q, want %q", i, got, want)
 		}
 	}
 	for _, l := range servers {

@@ -260,9 +260,15 @@ func (s *Server) road(name string) (*owner, *roadSession, error) {
 	return o, r, nil
 }
 
+// isRoad reports whether it is a road's traffic.
+func (o *owner) isRoad() bool {
+	_, is := o.sess.(*roadSession)
+	return is
+}
+
 // noRoad refuses what is asked of vehicles alone.
 func (o *owner) noRoad() error {
-	if _, road := o.sess.(*roadSession); road {
+	if o.isRoad() {
 		return refuse(leadlinev1.Reason_REASON_NOT_OFFERED, o.about(), "%q is a road and no vehicle: ask for its traffic", o.vehicle)
 	}
 	return nil

@@ -197,6 +197,7 @@ export class Client {
         resumeToken?: string | undefined;
         alarms?: boolean | undefined;
         beliefCells?: number | undefined;
+        roads?: boolean | undefined;
     }) | undefined, options?: import("@connectrpc/connect").CallOptions | undefined): AsyncGenerator<import("./leadline/v1/follow_pb.js").FollowResponse, void, unknown>;
 }
 export type WhereWishes = import("@bufbuild/protobuf").MessageInitShape<typeof import("./leadline/v1/where_pb.js").WhereRequestSchema>;

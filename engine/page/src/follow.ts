@@ -25,6 +25,10 @@ type Source<M> = {
   last(m: M): boolean;
   /** What it is called that a role is needed for. */
   what: string;
+  /** Hears that the stream is over for good: nothing comes after its last message, or there is nothing to follow. */
+  over?(): void;
+  /** Whether an error says that there is nothing to follow. */
+  nothing?(e: unknown): boolean;
 };
 
 const sleep = (ms: number) => new Promise((resolve) => setTimeout(resolve, ms));
@@ -36,9 +40,19 @@ const quietMost = 8000;
 export const follow = (wishes: MessageInitShape<typeof FollowRequestSchema>, on: Listener<FollowResponse>) =>
   listen({ open: (resumeToken, options) => calls.follow({ ...wishes, resumeToken }, options), resume: (m) => m.resumeToken, last: () => false, what: "Seeing positions" }, on);
 
-/** Follows a road's traffic until it ends or the returned function is called. */
-export const followTraffic = (wishes: MessageInitShape<typeof FollowTrafficRequestSchema>, on: Listener<FollowTrafficResponse>) =>
-  listen({ open: (_, options) => calls.followTraffic(wishes, options), resume: () => "", last: (m) => !!m.picture?.ended, what: "Seeing traffic" }, on);
+/** Follows a road's traffic until it ends, the server does not know the road, or the returned function is called. */
+export const followTraffic = (wishes: MessageInitShape<typeof FollowTrafficRequestSchema>, on: Listener<FollowTrafficResponse>, over: () => void) =>
+  listen(
+    {
+      open: (_, options) => calls.followTraffic(wishes, options),
+      resume: () => "",
+      last: (m) => !!m.picture?.ended,
+      what: "Seeing traffic",
+      over,
+      nothing: (e) => ConnectError.from(e).code === Code.NotFound,
+    },
+    on,
+  );
 
 function listen<M>(of: Source<M>, on: Listener<M>): () => void {
   let stopped = false;
@@ -57,7 +71,7 @@ function listen<M>(of: Source<M>, on: Listener<M>): () => void {
           if (ConnectError.from(e).details.length === 0) abort.abort();
         });
       }, 1000);
-      const asked = token.value;
+      const asked = token.peek();
       try {
         const fresh = resumeToken === "";
         const options = {
@@ -75,7 +89,10 @@ function listen<M>(of: Source<M>, on: Listener<M>): () => void {
           over = of.last(m);
           on.news(m);
         }
-        if (over) return;
+        if (over) {
+          of.over?.();
+          return;
+        }
         on.link({ state: "away", why: "The server has ended the stream." });
       } catch (e) {
         if (stopped) return;
@@ -89,7 +106,12 @@ function listen<M>(of: Source<M>, on: Listener<M>): () => void {
           while (token.value === asked && !stopped) await sleep(250);
           continue;
         }
-        const unknown = noteIdentity(e);
+        if (of.nothing?.(e)) {
+          on.link({ state: "away", why: sentence(e) });
+          of.over?.();
+          return;
+        }
+        const unknown = noteIdentity(e, asked);
         on.link({ state: "away", why: unknown ? "Your identity is not taken." : sentence(e) });
         if (unknown) {
           for (let i = 0; i < 40 && token.value === asked && !stopped; i++) await sleep(250);

@@ -33,23 +33,32 @@ export function useToken(text: string) {
   }
 }
 
-/** Attaches the token to every call, and notes when it is not taken. */
+/** How often the server has not taken a token. */
+let refusals = 0;
+
+/**
+ * Attaches the token to every call, and notes when it is not taken. An answer says that it is
+ * taken now only if it was asked for after the last refusal, and with the token of now.
+ */
 export const identify: Interceptor = (next) => async (request) => {
-  if (token.value) request.header.set("Authorization", `Bearer ${token.value}`);
+  const [shown, before] = [token.peek(), refusals];
+  if (shown) request.header.set("Authorization", `Bearer ${shown}`);
   try {
     const answer = await next(request);
-    if (!answer.stream) identityTrouble.value = "";
+    if (!answer.stream && shown === token.peek() && before === refusals) identityTrouble.value = "";
     return answer;
   } catch (e) {
-    noteIdentity(e);
+    noteIdentity(e, shown);
     throw e;
   }
 };
 
-/** Notes an error that is about who asks, and reports whether it was one. */
-export function noteIdentity(e: unknown): boolean {
+/** Notes an error that is about who asks, with the token that was shown, and reports whether it was one. */
+export function noteIdentity(e: unknown, shown: string): boolean {
   const error = ConnectError.from(e);
   if (error.code !== Code.Unauthenticated) return false;
+  if (shown !== token.peek()) return true; // another one is shown by now
+  refusals++;
   identityTrouble.value = token.value
     ? `Your identity has expired or is not known here: enter a new token. The server says: ${error.rawMessage}`
     : `This server wants to know who you are: enter your token. The server says: ${error.rawMessage}`;

@@ -21,6 +21,10 @@ export const order = signal<string[]>([]);
 export const alarms = signal<ReadonlyMap<bigint, AlarmRecord>>(new Map());
 export const openAlarms = computed(() => [...alarms.value.values()].filter((a) => !a.clearedAt));
 
+/** Roads whose traffic is heard, by name, as the server last said; and whether it has said so. */
+export const roads = signal<ReadonlyMap<string, { drive: string; ended: boolean }>>(new Map());
+export const roadsKnown = signal(false);
+
 export const link = signal<Link>({ state: "connecting", why: "" });
 
 /** When news last came, by the page's clock, ms; 0 before the first. */
@@ -128,11 +132,13 @@ async function check() {
 /** Begins to follow all vehicles. */
 export function start() {
   follow(
-    { detail: Detail.MODES, minIntervalS: 0.2, alarms: true },
+    { detail: Detail.MODES, minIntervalS: 0.2, alarms: true, roads: true },
     {
       link: (l) => (link.value = l),
       begins: (fresh) => {
         heardAt.value = Date.now();
+        roads.value = new Map(); // they are told anew
+        roadsKnown.value = true;
         if (!fresh) return;
         alarms.value = new Map();
         void check();
@@ -146,6 +152,14 @@ export function start() {
           case "farewell":
             over(m.vehicle, m.news.value.ended ? "The drive has ended." : `No more news: ${m.news.value.reason}.`);
             break;
+          case "road": {
+            const { gone, ended } = m.news.value;
+            const next = new Map(roads.value);
+            if (gone) next.delete(m.vehicle);
+            else next.set(m.vehicle, { drive: m.drive, ended });
+            roads.value = next;
+            break;
+          }
           case "alarm": {
             const next = new Map(alarms.value);
             next.set(m.news.value.number, m.news.value);

@@ -1,19 +1,11 @@
-// Roads whose traffic is heard: which there are, and what is known of the chosen one,
-// as the server pushes it.
-import { batch, signal } from "@preact/signals";
-import type { Vehicle } from "../../client/web/leadline/v1/fleet_pb.js";
+// Roads whose traffic is heard: what is known of the chosen one, as the server pushes it.
+import { batch, effect, signal } from "@preact/signals";
 import type { RoadShape, TrafficPicture } from "../../client/web/leadline/v1/traffic_pb.js";
-import { calls, sentence, soon } from "./api";
 import { followTraffic } from "./follow";
-import { needsRole } from "./identity";
-import { heardAt } from "./live";
+import { heardAt, roads } from "./live";
 
 /** The road that is shown. */
 export const road = signal("");
-
-/** The roads that the server has; undefined before it has said so. */
-export const roads = signal<Vehicle[] | undefined>(undefined);
-export const roadsTrouble = signal("");
 
 /** What was told of it last; the shape comes once, with the first picture. */
 export type Heard = { drive: string; picture: TrafficPicture; shape: RoadShape; receivedAt: number };
@@ -32,9 +24,6 @@ export const parts = 200;
 const hidden = signal(document.hidden);
 document.addEventListener("visibilitychange", () => (hidden.value = document.hidden));
 
-const mostRoads = 1000;
-const again = 4000; // ms
-
 /** Shows another road. */
 export function chooseRoad(name: string) {
   if (name === road.peek()) return;
@@ -45,37 +34,13 @@ export function chooseRoad(name: string) {
   });
 }
 
-/** Asks which roads there are; shows the first if none is chosen. */
-export async function listRoads() {
-  try {
-    const { vehicles } = await calls.listVehicles({ pageSize: mostRoads, traffic: true }, soon);
-    batch(() => {
-      roads.value = vehicles;
-      roadsTrouble.value = "";
-      const there = vehicles.find((v) => !v.ended) ?? vehicles[0];
-      if (!road.peek() && there) chooseRoad(there.vehicle);
-    });
-  } catch (e) {
-    roadsTrouble.value = needsRole(e, "Listing roads", "dispatcher", "analyst", "administrator") ?? sentence(e);
-  }
-}
-
-/** Follows the chosen road until the returned function is called. */
+/** Follows the chosen road, or the first that comes, until the returned function is called. */
 export function followRoad(): () => void {
   const name = road.value;
   const [least, flow] = [leastExistence.value, flowS.value];
   if (hidden.value) return () => {};
-  if (!name) {
-    // There is none yet: one may come.
-    const timer = setInterval(() => void listRoads(), again);
-    return () => clearInterval(timer);
-  }
-  let stop = () => {};
-  let timer: ReturnType<typeof setTimeout> | undefined;
-  const over = () => {
-    stop();
-    clearTimeout(timer);
-  };
+  let stop: (() => void) | undefined;
+  let seen = ""; // a drive whose end is shown
   const open = () => {
     let shape: RoadShape | undefined;
     stop = followTraffic(
@@ -87,20 +52,30 @@ export function followRoad(): () => void {
           shape = m.shape ?? shape;
           heardAt.value = Date.now();
           if (shape) heard.value = { drive: m.drive, picture: m.picture, shape, receivedAt: Date.now() };
-          if (m.picture.ended) awaitNext(m.drive);
+          if (m.picture.ended) seen = m.drive;
         },
+      },
+      () => {
+        stop = undefined;
+        // What came meanwhile is followed.
+        const now = roads.peek().get(name);
+        if (now && !now.ended && seen && now.drive !== seen) open();
       },
     );
   };
-  /** Another drive may come after one that has ended. */
-  const awaitNext = (drive: string) => {
-    timer = setTimeout(async () => {
-      await listRoads();
-      const now = roads.peek()?.find((v) => v.vehicle === name);
-      if (now && !now.ended && now.drive !== drive) open();
-      else if (road.peek() === name) awaitNext(drive);
-    }, again);
+  // News of roads say when there is something to follow: nobody asks for it again and again.
+  const off = effect(() => {
+    const all = roads.value;
+    if (!name) {
+      const there = [...all].find(([, r]) => !r.ended) ?? [...all][0];
+      if (there) queueMicrotask(() => !road.peek() && chooseRoad(there[0]));
+      return;
+    }
+    const r = all.get(name);
+    if (r && !stop && r.drive !== seen) open();
+  });
+  return () => {
+    off();
+    stop?.();
   };
-  open();
-  return over;
 }

@@ -4,14 +4,14 @@ import { useEffect, useMemo } from "preact/hooks";
 import { TrafficDoubtKind, type LineCount, type TrafficDoubt, type TrafficPicture } from "../../client/web/leadline/v1/traffic_pb.js";
 import { beliefScale, css } from "./colour";
 import { clockTimes, duration, figure, length, percent, some, utcTime } from "./format";
-import { link } from "./live";
+import { link, roads, roadsKnown } from "./live";
 import { densest, intensityDecades, layRoad, paintTraffic, wayOf, type Laid } from "./painttraffic";
 import { Plot } from "./plot";
 import type { LonLat } from "./project";
 import { address } from "./route";
 import { clock, dark, units } from "./settings";
 import { lookAt, stage } from "./stage";
-import { flowS, followRoad, heard, leastExistence, listRoads, parts, road, roads, roadsTrouble, trafficTrouble } from "./traffic";
+import { flowS, followRoad, heard, leastExistence, parts, road, trafficTrouble } from "./traffic";
 import { clockWords } from "./worry";
 
 /** The vehicle that was looked up last. */
@@ -39,7 +39,6 @@ function forwardTo({ corners }: Laid): string {
 const wayWords = { forward: "forward", backward: "backward", unknown: "either way" };
 
 export function Traffic() {
-  useEffect(() => void listRoads(), [link.value.state]);
   useEffect(() => {
     const stop = [
       effect(followRoad),
@@ -53,7 +52,7 @@ export function Traffic() {
           ground: r?.ground,
           label: `the traffic on ${road.value || "no road"}`,
           points: [],
-          wait: roads.value?.length === 0 ? "No road is heard here." : roads.value && !road.value ? "Choose a road." : "The road is on its way.",
+          wait: !roadsKnown.value || roads.value.has(road.value) ? "The road is on its way." : "No road is heard here.",
           paint: (ctx, v, _, d) => r && paintTraffic(ctx, v, r, h!.picture, m, d),
           legend: h && <Legend p={h.picture} />,
         };
@@ -64,35 +63,36 @@ export function Traffic() {
       stage.value = undefined;
     };
   }, []);
-  const all = roads.value;
+  const all = [...roads.value].sort(([a], [b]) => a.localeCompare(b));
+  const denied = link.value.state === "denied" ? link.value.why : "";
   const [name, h] = [road.value, heard.value];
   return (
     <>
-      {all && all.length > 1 && (
+      {all.length > 1 && (
         <label class="inline">
           Road{" "}
           <select name="road" value={name} onChange={(e) => (location.hash = address("traffic", e.currentTarget.value))}>
-            {!all.some((v) => v.vehicle === name) && <option value={name}>{name || "choose one"}</option>}
-            {all.map((v) => (
-              <option key={v.vehicle} value={v.vehicle}>
-                {v.vehicle}
-                {v.ended ? ", ended" : ""}
+            {!roads.value.has(name) && <option value={name}>{name || "choose one"}</option>}
+            {all.map(([n, r]) => (
+              <option key={n} value={n}>
+                {n}
+                {r.ended ? ", ended" : ""}
               </option>
             ))}
           </select>
         </label>
       )}
-      {roadsTrouble.value && !h && <p class="note bad">{roadsTrouble.value}</p>}
+      {denied && !h && <p class="note bad">{denied}</p>}
       {trafficTrouble.value && (
         <p class="note bad" role="alert" id="traffic-trouble">
           {trafficTrouble.value}
           {h && ` What is shown is ${duration((clock.value - h.receivedAt) / 1000)} old.`}
         </p>
       )}
-      {!h && !trafficTrouble.value && !roadsTrouble.value && (
+      {!h && !trafficTrouble.value && !denied && (
         <p class="empty">
-          {!all ? "Asking the server which roads it has." : name ? `What is heard on ${name} is on its way.` : "No road is heard here yet. It shows as soon as one is fed: a drive of bearings whose header says traffic, and names a suite that describes the road, by"}{" "}
-          {all && !name && <code>leadline feed DRIVE --to {location.host}</code>}
+          {!roadsKnown.value ? "Asking the server which roads it has." : roads.value.has(name) ? `What is heard on ${name} is on its way.` : name ? `There is no road ${name} here yet. It shows as soon as it is fed.` : "No road is heard here yet. It shows as soon as one is fed: a drive of bearings whose header says traffic, and names a suite that describes the road, by"}{" "}
+          {roadsKnown.value && !name && <code>leadline feed DRIVE --to {location.host}</code>}
         </p>
       )}
       {h && <Picture p={h.picture} laid={layRoad(name, h.shape)} receivedAt={h.receivedAt} />}

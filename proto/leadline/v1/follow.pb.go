@@ -116,7 +116,11 @@ type FollowRequest struct {
 	// plane, and of them 32768 on roads. With it, cells come packed: see
 	// BeliefGrid.runs and BeliefStretch.east_cm. If left out, 65536 and 4096, not
 	// packed.
-	BeliefCells   uint32 `protobuf:"varint,10,opt,name=belief_cells,json=beliefCells,proto3" json:"belief_cells,omitempty"`
+	BeliefCells uint32 `protobuf:"varint,10,opt,name=belief_cells,json=beliefCells,proto3" json:"belief_cells,omitempty"`
+	// Tell of roads whose traffic is followed, too, of all of them: those that are
+	// here first, then each when something about it changes. FollowTraffic tells
+	// what is on one.
+	Roads         bool `protobuf:"varint,11,opt,name=roads,proto3" json:"roads,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -221,6 +225,13 @@ func (x *FollowRequest) GetBeliefCells() uint32 {
 	return 0
 }
 
+func (x *FollowRequest) GetRoads() bool {
+	if x != nil {
+		return x.Roads
+	}
+	return false
+}
+
 // FollowResponse is news of one vehicle. Several posteriors may come together,
 // after a late measurement or a wait: only the last of them is told where an
 // area, DETAIL_REGION or DETAIL_BELIEF is asked for.
@@ -236,6 +247,7 @@ type FollowResponse struct {
 	//	*FollowResponse_Withdrawn
 	//	*FollowResponse_Farewell
 	//	*FollowResponse_Alarm
+	//	*FollowResponse_Road
 	News isFollowResponse_News `protobuf_oneof:"news"`
 	// With DETAIL_BELIEF, beside a posterior.
 	Belief *Belief `protobuf:"bytes,6,opt,name=belief,proto3" json:"belief,omitempty"`
@@ -339,6 +351,15 @@ func (x *FollowResponse) GetAlarm() *AlarmRecord {
 	return nil
 }
 
+func (x *FollowResponse) GetRoad() *FollowedRoad {
+	if x != nil {
+		if x, ok := x.News.(*FollowResponse_Road); ok {
+			return x.Road
+		}
+	}
+	return nil
+}
+
 func (x *FollowResponse) GetBelief() *Belief {
 	if x != nil {
 		return x.Belief
@@ -391,6 +412,12 @@ type FollowResponse_Alarm struct {
 	Alarm *AlarmRecord `protobuf:"bytes,10,opt,name=alarm,proto3,oneof"`
 }
 
+type FollowResponse_Road struct {
+	// A road as it now is; vehicle is its name. A stream that is resumed tells of
+	// all roads again.
+	Road *FollowedRoad `protobuf:"bytes,11,opt,name=road,proto3,oneof"`
+}
+
 func (*FollowResponse_Posterior) isFollowResponse_News() {}
 
 func (*FollowResponse_Withdrawn) isFollowResponse_News() {}
@@ -398,6 +425,8 @@ func (*FollowResponse_Withdrawn) isFollowResponse_News() {}
 func (*FollowResponse_Farewell) isFollowResponse_News() {}
 
 func (*FollowResponse_Alarm) isFollowResponse_News() {}
+
+func (*FollowResponse_Road) isFollowResponse_News() {}
 
 // Farewell is a drive's end.
 type Farewell struct {
@@ -464,11 +493,66 @@ func (x *Farewell) GetReason() string {
 	return ""
 }
 
+// FollowedRoad is a road whose traffic is followed.
+type FollowedRoad struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// Whether its drive has ended.
+	Ended bool `protobuf:"varint,1,opt,name=ended,proto3" json:"ended,omitempty"`
+	// The server knows it no more: it made room, or was erased.
+	Gone          bool `protobuf:"varint,2,opt,name=gone,proto3" json:"gone,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *FollowedRoad) Reset() {
+	*x = FollowedRoad{}
+	mi := &file_leadline_v1_follow_proto_msgTypes[3]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *FollowedRoad) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*FollowedRoad) ProtoMessage() {}
+
+func (x *FollowedRoad) ProtoReflect() protoreflect.Message {
+	mi := &file_leadline_v1_follow_proto_msgTypes[3]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use FollowedRoad.ProtoReflect.Descriptor instead.
+func (*FollowedRoad) Descriptor() ([]byte, []int) {
+	return file_leadline_v1_follow_proto_rawDescGZIP(), []int{3}
+}
+
+func (x *FollowedRoad) GetEnded() bool {
+	if x != nil {
+		return x.Ended
+	}
+	return false
+}
+
+func (x *FollowedRoad) GetGone() bool {
+	if x != nil {
+		return x.Gone
+	}
+	return false
+}
+
 var File_leadline_v1_follow_proto protoreflect.FileDescriptor
 
 const file_leadline_v1_follow_proto_rawDesc = "" +
 	"\n" +
-	"\x18leadline/v1/follow.proto\x12\vleadline.v1\x1a\x17leadline/v1/alarm.proto\x1a\x18leadline/v1/belief.proto\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x17leadline/v1/trail.proto\"\xa6\x03\n" +
+	"\x18leadline/v1/follow.proto\x12\vleadline.v1\x1a\x17leadline/v1/alarm.proto\x1a\x18leadline/v1/belief.proto\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x17leadline/v1/trail.proto\"\xbc\x03\n" +
 	"\rFollowRequest\x12\x1a\n" +
 	"\bvehicles\x18\x01 \x03(\tR\bvehicles\x12+\n" +
 	"\x06detail\x18\x02 \x01(\x0e2\x13.leadline.v1.DetailR\x06detail\x12$\n" +
@@ -480,8 +564,9 @@ const file_leadline_v1_follow_proto_rawDesc = "" +
 	"\fresume_token\x18\b \x01(\tR\vresumeToken\x12\x16\n" +
 	"\x06alarms\x18\t \x01(\bR\x06alarms\x12!\n" +
 	"\fbelief_cells\x18\n" +
-	" \x01(\rR\vbeliefCellsB\x13\n" +
-	"\x11_area_probability\"\xc1\x03\n" +
+	" \x01(\rR\vbeliefCells\x12\x14\n" +
+	"\x05roads\x18\v \x01(\bR\x05roadsB\x13\n" +
+	"\x11_area_probability\"\xf2\x03\n" +
 	"\x0eFollowResponse\x12\x18\n" +
 	"\avehicle\x18\x01 \x01(\tR\avehicle\x12\x14\n" +
 	"\x05drive\x18\x02 \x01(\tR\x05drive\x126\n" +
@@ -489,7 +574,8 @@ const file_leadline_v1_follow_proto_rawDesc = "" +
 	"\twithdrawn\x18\x04 \x01(\v2\x16.leadline.v1.WithdrawnH\x00R\twithdrawn\x123\n" +
 	"\bfarewell\x18\x05 \x01(\v2\x15.leadline.v1.FarewellH\x00R\bfarewell\x120\n" +
 	"\x05alarm\x18\n" +
-	" \x01(\v2\x18.leadline.v1.AlarmRecordH\x00R\x05alarm\x12+\n" +
+	" \x01(\v2\x18.leadline.v1.AlarmRecordH\x00R\x05alarm\x12/\n" +
+	"\x04road\x18\v \x01(\v2\x19.leadline.v1.FollowedRoadH\x00R\x04road\x12+\n" +
 	"\x06belief\x18\x06 \x01(\v2\x13.leadline.v1.BeliefR\x06belief\x12\x18\n" +
 	"\askipped\x18\a \x01(\x04R\askipped\x12!\n" +
 	"\fresume_token\x18\b \x01(\tR\vresumeToken\x126\n" +
@@ -498,7 +584,10 @@ const file_leadline_v1_follow_proto_rawDesc = "" +
 	"\bFarewell\x12\x14\n" +
 	"\x05ended\x18\x01 \x01(\bR\x05ended\x12)\n" +
 	"\x10posterior_sha256\x18\x02 \x01(\tR\x0fposteriorSha256\x12\x16\n" +
-	"\x06reason\x18\x03 \x01(\tR\x06reason*l\n" +
+	"\x06reason\x18\x03 \x01(\tR\x06reason\"8\n" +
+	"\fFollowedRoad\x12\x14\n" +
+	"\x05ended\x18\x01 \x01(\bR\x05ended\x12\x12\n" +
+	"\x04gone\x18\x02 \x01(\bR\x04gone*l\n" +
 	"\x06Detail\x12\x16\n" +
 	"\x12DETAIL_UNSPECIFIED\x10\x00\x12\x12\n" +
 	"\x0eDETAIL_SUMMARY\x10\x01\x12\x10\n" +
@@ -519,33 +608,35 @@ func file_leadline_v1_follow_proto_rawDescGZIP() []byte {
 }
 
 var file_leadline_v1_follow_proto_enumTypes = make([]protoimpl.EnumInfo, 1)
-var file_leadline_v1_follow_proto_msgTypes = make([]protoimpl.MessageInfo, 3)
+var file_leadline_v1_follow_proto_msgTypes = make([]protoimpl.MessageInfo, 4)
 var file_leadline_v1_follow_proto_goTypes = []any{
 	(Detail)(0),               // 0: leadline.v1.Detail
 	(*FollowRequest)(nil),     // 1: leadline.v1.FollowRequest
 	(*FollowResponse)(nil),    // 2: leadline.v1.FollowResponse
 	(*Farewell)(nil),          // 3: leadline.v1.Farewell
-	(*Polygon)(nil),           // 4: leadline.v1.Polygon
-	(*Posterior)(nil),         // 5: leadline.v1.Posterior
-	(*Withdrawn)(nil),         // 6: leadline.v1.Withdrawn
-	(*AlarmRecord)(nil),       // 7: leadline.v1.AlarmRecord
-	(*Belief)(nil),            // 8: leadline.v1.Belief
-	(*RecentMeasurement)(nil), // 9: leadline.v1.RecentMeasurement
+	(*FollowedRoad)(nil),      // 4: leadline.v1.FollowedRoad
+	(*Polygon)(nil),           // 5: leadline.v1.Polygon
+	(*Posterior)(nil),         // 6: leadline.v1.Posterior
+	(*Withdrawn)(nil),         // 7: leadline.v1.Withdrawn
+	(*AlarmRecord)(nil),       // 8: leadline.v1.AlarmRecord
+	(*Belief)(nil),            // 9: leadline.v1.Belief
+	(*RecentMeasurement)(nil), // 10: leadline.v1.RecentMeasurement
 }
 var file_leadline_v1_follow_proto_depIdxs = []int32{
-	0, // 0: leadline.v1.FollowRequest.detail:type_name -> leadline.v1.Detail
-	4, // 1: leadline.v1.FollowRequest.area:type_name -> leadline.v1.Polygon
-	5, // 2: leadline.v1.FollowResponse.posterior:type_name -> leadline.v1.Posterior
-	6, // 3: leadline.v1.FollowResponse.withdrawn:type_name -> leadline.v1.Withdrawn
-	3, // 4: leadline.v1.FollowResponse.farewell:type_name -> leadline.v1.Farewell
-	7, // 5: leadline.v1.FollowResponse.alarm:type_name -> leadline.v1.AlarmRecord
-	8, // 6: leadline.v1.FollowResponse.belief:type_name -> leadline.v1.Belief
-	9, // 7: leadline.v1.FollowResponse.recent:type_name -> leadline.v1.RecentMeasurement
-	8, // [8:8] is the sub-list for method output_type
-	8, // [8:8] is the sub-list for method input_type
-	8, // [8:8] is the sub-list for extension type_name
-	8, // [8:8] is the sub-list for extension extendee
-	0, // [0:8] is the sub-list for field type_name
+	0,  // 0: leadline.v1.FollowRequest.detail:type_name -> leadline.v1.Detail
+	5,  // 1: leadline.v1.FollowRequest.area:type_name -> leadline.v1.Polygon
+	6,  // 2: leadline.v1.FollowResponse.posterior:type_name -> leadline.v1.Posterior
+	7,  // 3: leadline.v1.FollowResponse.withdrawn:type_name -> leadline.v1.Withdrawn
+	3,  // 4: leadline.v1.FollowResponse.farewell:type_name -> leadline.v1.Farewell
+	8,  // 5: leadline.v1.FollowResponse.alarm:type_name -> leadline.v1.AlarmRecord
+	4,  // 6: leadline.v1.FollowResponse.road:type_name -> leadline.v1.FollowedRoad
+	9,  // 7: leadline.v1.FollowResponse.belief:type_name -> leadline.v1.Belief
+	10, // 8: leadline.v1.FollowResponse.recent:type_name -> leadline.v1.RecentMeasurement
+	9,  // [9:9] is the sub-list for method output_type
+	9,  // [9:9] is the sub-list for method input_type
+	9,  // [9:9] is the sub-list for extension type_name
+	9,  // [9:9] is the sub-list for extension extendee
+	0,  // [0:9] is the sub-list for field type_name
 }
 
 func init() { file_leadline_v1_follow_proto_init() }
@@ -564,6 +655,7 @@ func file_leadline_v1_follow_proto_init() {
 		(*FollowResponse_Withdrawn)(nil),
 		(*FollowResponse_Farewell)(nil),
 		(*FollowResponse_Alarm)(nil),
+		(*FollowResponse_Road)(nil),
 	}
 	type x struct{}
 	out := protoimpl.TypeBuilder{
@@ -571,7 +663,7 @@ func file_leadline_v1_follow_proto_init() {
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_leadline_v1_follow_proto_rawDesc), len(file_leadline_v1_follow_proto_rawDesc)),
 			NumEnums:      1,
-			NumMessages:   3,
+			NumMessages:   4,
 			NumExtensions: 0,
 			NumServices:   0,
 		},

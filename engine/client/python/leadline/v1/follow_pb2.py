@@ -18,7 +18,7 @@ from leadline.v1 import posterior_pb2 as leadline_dot_v1_dot_posterior__pb2
 from leadline.v1 import trail_pb2 as leadline_dot_v1_dot_trail__pb2
 
 
-DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x18leadline/v1/follow.proto\x12\x0bleadline.v1\x1a\x17leadline/v1/alarm.proto\x1a\x18leadline/v1/belief.proto\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x17leadline/v1/trail.proto\"\xa6\x03\n\rFollowRequest\x12\x1a\n\x08vehicles\x18\x01 \x03(\tR\x08vehicles\x12+\n\x06\x64\x65tail\x18\x02 \x01(\x0e\x32\x13.leadline.v1.DetailR\x06\x64\x65tail\x12$\n\x0emin_interval_s\x18\x03 \x01(\x01R\x0cminIntervalS\x12.\n\x13status_changes_only\x18\x04 \x01(\x08R\x11statusChangesOnly\x12(\n\x04\x61rea\x18\x05 \x01(\x0b\x32\x14.leadline.v1.PolygonR\x04\x61rea\x12.\n\x10\x61rea_probability\x18\x06 \x01(\x01H\x00R\x0f\x61reaProbability\x88\x01\x01\x12)\n\x10region_fractions\x18\x07 \x03(\x01R\x0fregionFractions\x12!\n\x0cresume_token\x18\x08 \x01(\tR\x0bresumeToken\x12\x16\n\x06\x61larms\x18\t \x01(\x08R\x06\x61larms\x12!\n\x0c\x62\x65lief_cells\x18\n \x01(\rR\x0b\x62\x65liefCellsB\x13\n\x11_area_probability\"\xc1\x03\n\x0e\x46ollowResponse\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\x12\x14\n\x05\x64rive\x18\x02 \x01(\tR\x05\x64rive\x12\x36\n\tposterior\x18\x03 \x01(\x0b\x32\x16.leadline.v1.PosteriorH\x00R\tposterior\x12\x36\n\twithdrawn\x18\x04 \x01(\x0b\x32\x16.leadline.v1.WithdrawnH\x00R\twithdrawn\x12\x33\n\x08\x66\x61rewell\x18\x05 \x01(\x0b\x32\x15.leadline.v1.FarewellH\x00R\x08\x66\x61rewell\x12\x30\n\x05\x61larm\x18\n \x01(\x0b\x32\x18.leadline.v1.AlarmRecordH\x00R\x05\x61larm\x12+\n\x06\x62\x65lief\x18\x06 \x01(\x0b\x32\x13.leadline.v1.BeliefR\x06\x62\x65lief\x12\x18\n\x07skipped\x18\x07 \x01(\x04R\x07skipped\x12!\n\x0cresume_token\x18\x08 \x01(\tR\x0bresumeToken\x12\x36\n\x06recent\x18\t \x03(\x0b\x32\x1e.leadline.v1.RecentMeasurementR\x06recentB\x06\n\x04news\"c\n\x08\x46\x61rewell\x12\x14\n\x05\x65nded\x18\x01 \x01(\x08R\x05\x65nded\x12)\n\x10posterior_sha256\x18\x02 \x01(\tR\x0fposteriorSha256\x12\x16\n\x06reason\x18\x03 \x01(\tR\x06reason*l\n\x06\x44\x65tail\x12\x16\n\x12\x44\x45TAIL_UNSPECIFIED\x10\x00\x12\x12\n\x0e\x44\x45TAIL_SUMMARY\x10\x01\x12\x10\n\x0c\x44\x45TAIL_MODES\x10\x02\x12\x11\n\rDETAIL_REGION\x10\x03\x12\x11\n\rDETAIL_BELIEF\x10\x04\x42\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
+DESCRIPTOR = _descriptor_pool.Default().AddSerializedFile(b'\n\x18leadline/v1/follow.proto\x12\x0bleadline.v1\x1a\x17leadline/v1/alarm.proto\x1a\x18leadline/v1/belief.proto\x1a\x17leadline/v1/place.proto\x1a\x1bleadline/v1/posterior.proto\x1a\x17leadline/v1/trail.proto\"\xbc\x03\n\rFollowRequest\x12\x1a\n\x08vehicles\x18\x01 \x03(\tR\x08vehicles\x12+\n\x06\x64\x65tail\x18\x02 \x01(\x0e\x32\x13.leadline.v1.DetailR\x06\x64\x65tail\x12$\n\x0emin_interval_s\x18\x03 \x01(\x01R\x0cminIntervalS\x12.\n\x13status_changes_only\x18\x04 \x01(\x08R\x11statusChangesOnly\x12(\n\x04\x61rea\x18\x05 \x01(\x0b\x32\x14.leadline.v1.PolygonR\x04\x61rea\x12.\n\x10\x61rea_probability\x18\x06 \x01(\x01H\x00R\x0f\x61reaProbability\x88\x01\x01\x12)\n\x10region_fractions\x18\x07 \x03(\x01R\x0fregionFractions\x12!\n\x0cresume_token\x18\x08 \x01(\tR\x0bresumeToken\x12\x16\n\x06\x61larms\x18\t \x01(\x08R\x06\x61larms\x12!\n\x0c\x62\x65lief_cells\x18\n \x01(\rR\x0b\x62\x65liefCells\x12\x14\n\x05roads\x18\x0b \x01(\x08R\x05roadsB\x13\n\x11_area_probability\"\xf2\x03\n\x0e\x46ollowResponse\x12\x18\n\x07vehicle\x18\x01 \x01(\tR\x07vehicle\x12\x14\n\x05\x64rive\x18\x02 \x01(\tR\x05\x64rive\x12\x36\n\tposterior\x18\x03 \x01(\x0b\x32\x16.leadline.v1.PosteriorH\x00R\tposterior\x12\x36\n\twithdrawn\x18\x04 \x01(\x0b\x32\x16.leadline.v1.WithdrawnH\x00R\twithdrawn\x12\x33\n\x08\x66\x61rewell\x18\x05 \x01(\x0b\x32\x15.leadline.v1.FarewellH\x00R\x08\x66\x61rewell\x12\x30\n\x05\x61larm\x18\n \x01(\x0b\x32\x18.leadline.v1.AlarmRecordH\x00R\x05\x61larm\x12/\n\x04road\x18\x0b \x01(\x0b\x32\x19.leadline.v1.FollowedRoadH\x00R\x04road\x12+\n\x06\x62\x65lief\x18\x06 \x01(\x0b\x32\x13.leadline.v1.BeliefR\x06\x62\x65lief\x12\x18\n\x07skipped\x18\x07 \x01(\x04R\x07skipped\x12!\n\x0cresume_token\x18\x08 \x01(\tR\x0bresumeToken\x12\x36\n\x06recent\x18\t \x03(\x0b\x32\x1e.leadline.v1.RecentMeasurementR\x06recentB\x06\n\x04news\"c\n\x08\x46\x61rewell\x12\x14\n\x05\x65nded\x18\x01 \x01(\x08R\x05\x65nded\x12)\n\x10posterior_sha256\x18\x02 \x01(\tR\x0fposteriorSha256\x12\x16\n\x06reason\x18\x03 \x01(\tR\x06reason\"8\n\x0c\x46ollowedRoad\x12\x14\n\x05\x65nded\x18\x01 \x01(\x08R\x05\x65nded\x12\x12\n\x04gone\x18\x02 \x01(\x08R\x04gone*l\n\x06\x44\x65tail\x12\x16\n\x12\x44\x45TAIL_UNSPECIFIED\x10\x00\x12\x12\n\x0e\x44\x45TAIL_SUMMARY\x10\x01\x12\x10\n\x0c\x44\x45TAIL_MODES\x10\x02\x12\x11\n\rDETAIL_REGION\x10\x03\x12\x11\n\rDETAIL_BELIEF\x10\x04\x42\'Z%leadline/proto/leadline/v1;leadlinev1b\x06proto3')
 
 _builder.BuildMessageAndEnumDescriptors(DESCRIPTOR, globals())
 _builder.BuildTopDescriptorsAndMessages(DESCRIPTOR, 'leadline.v1.follow_pb2', globals())
@@ -26,12 +26,14 @@ if _descriptor._USE_C_DESCRIPTORS == False:
 
   DESCRIPTOR._options = None
   DESCRIPTOR._serialized_options = b'Z%leadline/proto/leadline/v1;leadlinev1'
-  _DETAIL._serialized_start=1149
-  _DETAIL._serialized_end=1257
+  _DETAIL._serialized_start=1278
+  _DETAIL._serialized_end=1386
   _FOLLOWREQUEST._serialized_start=172
-  _FOLLOWREQUEST._serialized_end=594
-  _FOLLOWRESPONSE._serialized_start=597
-  _FOLLOWRESPONSE._serialized_end=1046
-  _FAREWELL._serialized_start=1048
-  _FAREWELL._serialized_end=1147
+  _FOLLOWREQUEST._serialized_end=616
+  _FOLLOWRESPONSE._serialized_start=619
+  _FOLLOWRESPONSE._serialized_end=1117
+  _FAREWELL._serialized_start=1119
+  _FAREWELL._serialized_end=1218
+  _FOLLOWEDROAD._serialized_start=1220
+  _FOLLOWEDROAD._serialized_end=1276
 # @@protoc_insertion_point(module_scope)

@@ -101,6 +101,15 @@ export declare type FollowRequest = Message<"leadline.v1.FollowRequest"> & {
    * @generated from field: uint32 belief_cells = 10;
    */
   beliefCells: number;
+
+  /**
+   * Tell of roads whose traffic is followed, too, of all of them: those that are
+   * here first, then each when something about it changes. FollowTraffic tells
+   * what is on one.
+   *
+   * @generated from field: bool roads = 11;
+   */
+  roads: boolean;
 };
 
 /**
@@ -166,6 +175,15 @@ export declare type FollowResponse = Message<"leadline.v1.FollowResponse"> & {
      */
     value: AlarmRecord;
     case: "alarm";
+  } | {
+    /**
+     * A road as it now is; vehicle is its name. A stream that is resumed tells of
+     * all roads again.
+     *
+     * @generated from field: leadline.v1.FollowedRoad road = 11;
+     */
+    value: FollowedRoad;
+    case: "road";
   } | { case: undefined; value?: undefined };
 
   /**
@@ -240,6 +258,33 @@ export declare type Farewell = Message<"leadline.v1.Farewell"> & {
  * Use `create(FarewellSchema)` to create a new message.
  */
 export declare const FarewellSchema: GenMessage<Farewell>;
+
+/**
+ * FollowedRoad is a road whose traffic is followed.
+ *
+ * @generated from message leadline.v1.FollowedRoad
+ */
+export declare type FollowedRoad = Message<"leadline.v1.FollowedRoad"> & {
+  /**
+   * Whether its drive has ended.
+   *
+   * @generated from field: bool ended = 1;
+   */
+  ended: boolean;
+
+  /**
+   * The server knows it no more: it made room, or was erased.
+   *
+   * @generated from field: bool gone = 2;
+   */
+  gone: boolean;
+};
+
+/**
+ * Describes the message leadline.v1.FollowedRoad.
+ * Use `create(FollowedRoadSchema)` to create a new message.
+ */
+export declare const FollowedRoadSchema: GenMessage<FollowedRoad>;
 
 /**
  * Detail is how much of a posterior an update holds.
