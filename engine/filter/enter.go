@@ -200,7 +200,7 @@ func (b *Belief) inject(space LineSpace, from *Gaussians, places []Nearest, keep
 		h := lines.WidthM[p.Chart]
 		cell := int32(math.Min(math.Max(math.Floor(p.AlongM/h), 0), float64(lines.Cells[p.Chart]-1)))
 		g.mean[0] += p.AlongM - float64((float64(cell)+0.5)*h)
-		mv.line(p.Chart, cell, &g)
+		mv.sendLine(LineKey(p.Chart, cell), &g)
 	}
 	b.Pruned += mv.pruned
 	b.LeftMap += mv.left

@@ -1,31 +1,106 @@
 package filter
 
-import "math"
+import (
+	"math"
+
+	"leadline/engine/kernel"
+)
 
 // foldSigmas is where splitting a wide Gaussian stops: what lies beyond goes
 // into the outermost piece, so that mass, mean and variance stay exact.
 const foldSigmas = 3.5
 
-// line sends a Gaussian whose position is relative to the centre of a cell of
-// a chart.
-func (mv *mover) line(chart, cell int32, g *gaussian) {
-	h := mv.lines.WidthM[chart]
-	pos := float64((float64(cell)+0.5)*h) + g.mean[0]
-	sigma := math.Sqrt(g.cov[0])
-	if sigma <= 0.5*h {
+// lineMove is the memory for moving Gaussians on lines: some that have moved, and where
+// they are cut, in standard deviations, with the standard normal there.
+type lineMove struct {
+	moved            Gaussians
+	z, density, tail []float64
+	work             kernel.EdgeWork
+}
+
+// lineRun is how many Gaussians are moved before they are cut.
+const lineRun = 256
+
+// sendLines is send on lines: for a run of Gaussians after the other, so that the edges at
+// which they are cut are evaluated together.
+func (mv *mover) sendLines(b *Belief, w *Workspace, add []float64) {
+	k, lm, g := mv.k, &mv.line, &mv.g
+	for from := 0; from < len(b.Key); from += lineRun {
+		to := min(from+lineRun, len(b.Key))
+		lm.moved.reset()
+		lm.z = lm.z[:0]
+		for i := from; i < to; i++ {
+			b.load(g, i, k)
+			mv.advance(w, b.Dim, i, add)
+			lm.moved.push(b.Key[i], k, g)
+			lm.cuts(mv.lines, b.Key[i], g)
+		}
+		lm.evaluate()
+		at := 0
+		for i := range to - from {
+			lm.moved.load(g, i, k)
+			mv.index = int32(from + i)
+			at = mv.cut(lm.moved.Key[i], g, at)
+		}
+	}
+}
+
+// sendLine sends one Gaussian whose position is relative to the centre of a cell of a
+// chart.
+func (mv *mover) sendLine(key uint64, g *gaussian) {
+	lm := &mv.line
+	lm.z = lm.z[:0]
+	lm.cuts(mv.lines, key, g)
+	lm.evaluate()
+	mv.cut(key, g, 0)
+}
+
+// extent is where a Gaussian of a cell is, its standard deviation, and the first and last
+// cell that it is cut for; the same if it is not cut.
+func (ln *Lines) extent(key uint64, g *gaussian) (pos, sigma, first, last float64) {
+	chart, cell := LineCell(key)
+	h := ln.WidthM[chart]
+	pos = float64((float64(cell)+0.5)*h) + g.mean[0]
+	if sigma = math.Sqrt(g.cov[0]); sigma <= 0.5*h {
+		return pos, sigma, 0, 0
+	}
+	return pos, sigma, math.Floor((pos - foldSigmas*sigma) / h), math.Floor((pos + foldSigmas*sigma) / h)
+}
+
+// cuts appends where a Gaussian is cut.
+func (lm *lineMove) cuts(ln *Lines, key uint64, g *gaussian) {
+	pos, sigma, first, last := ln.extent(key, g)
+	chart, _ := LineCell(key)
+	for j := first; j < last; j++ {
+		lm.z = append(lm.z, (float64((j+1)*ln.WidthM[chart])-pos)/sigma)
+	}
+}
+
+func (lm *lineMove) evaluate() {
+	n := len(lm.z)
+	lm.density, lm.tail = resize(lm.density, n), resize(lm.tail, n)
+	kernel.Edges(lm.density, lm.tail, lm.z, &lm.work)
+}
+
+// cut sends a Gaussian, in pieces if it is wide, of which the edges are from at on; it
+// returns where those of the next one are.
+func (mv *mover) cut(key uint64, g *gaussian, at int) int {
+	pos, sigma, first, last := mv.lines.extent(key, g)
+	chart, _ := LineCell(key)
+	if !(sigma > 0.5*mv.lines.WidthM[chart]) {
 		mv.from[0] = g.mean[0]
 		mv.place(chart, pos, g, g.mass, 0)
-		return
+		return at
 	}
-	first := math.Floor((pos - foldSigmas*sigma) / h)
-	last := math.Floor((pos + foldSigmas*sigma) / h)
+	lm := &mv.line
 	var whole cutting
 	whole.begin(g, mv.k, 0)
 	left := edge{z: math.Inf(-1)}
 	for j := first; j <= last; j++ {
 		right := edge{z: math.Inf(1)}
 		if j < last {
-			right = edgeAt((float64((j+1)*h) - pos) / sigma)
+			right = edge{lm.z[at], lm.density[at], lm.tail[at]}
+			at++
 		}
 		if c := between(left, right); c.share > 0 {
 			whole.piece(&mv.piece, mv.k, c)
@@ -36,6 +111,7 @@ func (mv *mover) line(chart, cell int32, g *gaussian) {
 		}
 		left = right
 	}
+	return at
 }
 
 // placeDepth bounds how many short edges one step may cross.

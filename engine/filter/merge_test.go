@@ -217,7 +217,7 @@ func TestSplittingAgainstMixture(t *testing.T) {
 		g.mean[0], g.cov[0] = 0.21, sigma*sigma
 		var out Gaussians
 		mv := mover{k: 1, dim: 1, out: &out, lines: ln}
-		mv.line(0, 200, &g)
+		mv.sendLine(LineKey(0, 200), &g)
 		const pos = 200.5 + 0.21
 		var mass, mean, second float64
 		share := map[int32]float64{}

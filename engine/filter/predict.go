@@ -158,27 +158,31 @@ func (mv *mover) send(b *Belief, w *Workspace) bool {
 	} else {
 		mv.f.set(k, step.F)
 	}
+	if b.Dim == 1 {
+		mv.sendLines(b, w, add)
+		return true
+	}
 	g := &mv.g
 	for i := range b.Key {
 		b.load(g, i, k)
-		if step.Local != nil {
-			copy(mv.stepAdd, w.add[i*b.Dim:(i+1)*b.Dim])
-			copy(mv.stepF, w.f[i*b.Dim*k:(i+1)*b.Dim*k])
-			mv.f.set(k, mv.stepF)
-		}
-		g.advance(&mv.f, add, step.Q)
+		mv.advance(w, b.Dim, i, add)
 		mv.index = int32(i)
-		if b.Dim == 1 {
-			chart, cell := LineCell(b.Key[i])
-			mv.line(chart, cell, g)
-		} else {
-			mv.plane(b.Lattice, b.Key[i], g, w.tiles.density[i] < mv.faint)
-			if mv.cuts > maxPieces {
-				return false
-			}
+		mv.plane(b.Lattice, b.Key[i], g, w.tiles.density[i] < mv.faint)
+		if mv.cuts > maxPieces {
+			return false
 		}
 	}
 	return true
+}
+
+// advance moves mv.g, which is Gaussian i, by the step.
+func (mv *mover) advance(w *Workspace, dim, i int, add []float64) {
+	if k := mv.k; mv.step.Local != nil {
+		copy(mv.stepAdd, w.add[i*dim:(i+1)*dim])
+		copy(mv.stepF, w.f[i*dim*k:(i+1)*dim*k])
+		mv.f.set(k, mv.stepF)
+	}
+	mv.g.advance(&mv.f, add, mv.step.Q)
 }
 
 func resize[T any](s []T, n int) []T {
@@ -196,6 +200,7 @@ type mover struct {
 	stepF        []float64
 	f            transition
 	g, piece     gaussian
+	line         lineMove
 	angular      uint
 	lines        *Lines
 	lattice      Lattice

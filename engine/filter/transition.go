@@ -8,6 +8,7 @@ type transition struct {
 	size  [MaxK]int
 	col   [MaxK][MaxK]int
 	value [MaxK][MaxK]float64
+	c     [MaxK][MaxK]float64 // apply's
 }
 
 // set takes a k×k matrix by rows; nil is the identity.
@@ -49,11 +50,12 @@ func (g *gaussian) advance(t *transition, add, q []float64) {
 }
 
 func (g *gaussian) apply(t *transition) {
-	var c [MaxK][MaxK]float64 // C fᵀ of each row f
+	c := &t.c // C fᵀ of each row f
 	var mean [MaxK]float64
 	k := t.k
 	for a := range t.n {
 		ca := c[a][:k]
+		clear(ca)
 		m := 0.0
 		for x := range t.size[a] {
 			j, v := t.col[a][x], t.value[a][x]

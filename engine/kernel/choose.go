@@ -45,3 +45,7 @@ func faint(src []float64, floor float64) (some, below bool) { return faintPlain(
 func logs(dst, src []float64) { logsPlain(dst, src, 0) }
 
 func exps(dst, src []float64) { expsPlain(dst, src, 0) }
+
+func normalSeries(x []float64) { normalSeriesPlain(x, 0) }
+
+func normalFraction(x []float64) { normalFractionPlain(x, 0) }

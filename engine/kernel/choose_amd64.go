@@ -147,3 +147,23 @@ func exps(dst, src []float64) {
 	}
 	expsPlain(dst, src, n)
 }
+
+func normalSeries(x []float64) {
+	n := 0
+	if vectors {
+		if n = len(x) &^ 3; n > 0 {
+			normalSeriesAVX2(&x[0], n)
+		}
+	}
+	normalSeriesPlain(x, n)
+}
+
+func normalFraction(x []float64) {
+	n := 0
+	if vectors {
+		if n = len(x) &^ 3; n > 0 {
+			normalFractionAVX2(&x[0], n)
+		}
+	}
+	normalFractionPlain(x, n)
+}

@@ -25,22 +25,41 @@ func NormalUpper(x float64) float64 {
 		return x
 	case x < 0:
 		return 1 - NormalUpper(-x)
-	case x > 38.6:
+	case x > normalEnd:
 		return 0
-	case x < 3:
-		term, sum, z := x, x, x*x
-		for n := 3.0; term > 1e-18*sum; n += 2 {
-			term = float64(term*z) / n
-			sum += term
-		}
-		return 0.5 - float64(NormalDensity(x)*sum)
+	case x < seriesEnd:
+		return 0.5 - float64(NormalDensity(x)*normalSum(x))
 	}
+	return NormalDensity(x) / millsInverse(x)
+}
+
+const (
+	normalEnd = 38.6
+	seriesEnd = 3
+	// seriesLeast is the term, relative to the sum, from which on none changes it.
+	seriesLeast = 1e-18
+)
+
+// normalSum is (1/2 - Q(x))/density(x) for 0 ≤ x < seriesEnd.
+func normalSum(x float64) float64 {
+	term, sum, z := x, x, x*x
+	for n := 3.0; term > seriesLeast*sum; n += 2 {
+		term = float64(term*z) / n
+		sum += term
+	}
+	return sum
+}
+
+// millsInverse is density(x)/Q(x) from seriesEnd on.
+func millsInverse(x float64) float64 {
 	f := x
-	for n := math.Ceil(11 + 350/float64(x*x)); n >= 1; n-- {
+	for n := fractionDepth(x); n >= 1; n-- {
 		f = x + n/f
 	}
-	return NormalDensity(x) / f
+	return f
 }
+
+func fractionDepth(x float64) float64 { return math.Ceil(11 + 350/float64(x*x)) }
 
 // NormalQuantile returns x with P(Z > x) = q for q in (0, 1): ±Inf at the
 // ends, NaN outside. Newton's method on NormalUpper from the bound

@@ -210,3 +210,25 @@ func TestLogsBits(t *testing.T) {
 		sameBits(t, "Exps", got, want)
 	}
 }
+
+// TestEdgesBits compares Edges with NormalDensity and NormalUpper.
+func TestEdgesBits(t *testing.T) {
+	const seed = 11
+	rng := rand.New(rand.NewPCG(seed, 1))
+	var work EdgeWork
+	for trial := range 400 {
+		n := trial % 23
+		z, density, tail := make([]float64, n), make([]float64, n), make([]float64, n)
+		var wantDensity, wantTail []float64
+		for i := range z {
+			z[i] = []float64{1, 3.2, 12, 40}[rng.IntN(4)] * rng.NormFloat64()
+			if rng.IntN(9) == 0 {
+				z[i] = []float64{0, 3, -3, 38.6, 1e-300, -50, math.Nextafter(3, 0), 1e-9}[rng.IntN(8)]
+			}
+			wantDensity, wantTail = append(wantDensity, NormalDensity(z[i])), append(wantTail, NormalUpper(math.Abs(z[i])))
+		}
+		Edges(density, tail, z, &work)
+		sameBits(t, "densities", density, wantDensity)
+		sameBits(t, "tails", tail, wantTail)
+	}
+}

@@ -73,3 +73,13 @@ func logsAVX2(dst *float64, src *float64, n int)
 //
 //go:noescape
 func expsAVX2(dst *float64, src *float64, n int)
+
+// normalSeriesAVX2 is normalSeriesPlain for n values, a multiple of 4.
+//
+//go:noescape
+func normalSeriesAVX2(x *float64, n int)
+
+// normalFractionAVX2 is normalFractionPlain for n values, a multiple of 4.
+//
+//go:noescape
+func normalFractionAVX2(x *float64, n int)

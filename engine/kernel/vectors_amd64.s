@@ -1611,3 +1611,106 @@ next:
 done:
 	VZEROUPPER
 	RET
+
+// func normalSeriesAVX2(x *float64, n int)
+// Requires: AVX
+TEXT ·normalSeriesAVX2(SB), NOSPLIT, $0-16
+	MOVQ x+0(FP), AX
+	MOVQ n+8(FP), CX
+
+next:
+	TESTQ   CX, CX
+	JZ      done
+	VMOVUPD (AX), Y0
+	VMOVAPD Y0, Y1
+	VMULPD  Y0, Y0, Y2
+	VMOVUPD three<>+0(SB), Y3
+
+term:
+	VMULPD    seriesLeast<>+0(SB), Y1, Y4
+	VCMPPD    $0x1e, Y4, Y0, Y4
+	VMOVMSKPD Y4, DX
+	TESTL     DX, DX
+	JZ        summed
+	VMULPD    Y2, Y0, Y0
+	VDIVPD    Y3, Y0, Y0
+	VADDPD    Y0, Y1, Y1
+	VADDPD    two<>+0(SB), Y3, Y3
+	JMP       term
+
+summed:
+	VMOVUPD Y1, (AX)
+	ADDQ    $0x20, AX
+	SUBQ    $0x04, CX
+	JMP     next
+
+done:
+	VZEROUPPER
+	RET
+
+DATA seriesLeast<>+0(SB)/8, $0x3c32725dd1d243ac
+DATA seriesLeast<>+8(SB)/8, $0x3c32725dd1d243ac
+DATA seriesLeast<>+16(SB)/8, $0x3c32725dd1d243ac
+DATA seriesLeast<>+24(SB)/8, $0x3c32725dd1d243ac
+GLOBL seriesLeast<>(SB), RODATA|NOPTR, $32
+
+DATA three<>+0(SB)/8, $0x4008000000000000
+DATA three<>+8(SB)/8, $0x4008000000000000
+DATA three<>+16(SB)/8, $0x4008000000000000
+DATA three<>+24(SB)/8, $0x4008000000000000
+GLOBL three<>(SB), RODATA|NOPTR, $32
+
+// func normalFractionAVX2(x *float64, n int)
+// Requires: AVX
+TEXT ·normalFractionAVX2(SB), NOSPLIT, $0-16
+	MOVQ x+0(FP), AX
+	MOVQ n+8(FP), CX
+
+next:
+	TESTQ      CX, CX
+	JZ         done
+	VMOVUPD    (AX), Y0
+	VMOVAPD    Y0, Y1
+	VMULPD     Y0, Y0, Y2
+	VMOVUPD    fractionSlope<>+0(SB), Y3
+	VDIVPD     Y2, Y3, Y2
+	VADDPD     fractionLeast<>+0(SB), Y2, Y2
+	VROUNDPD   $0x0a, Y2, Y2
+	VPERM2F128 $0x01, Y2, Y2, Y3
+	VMAXPD     Y2, Y3, Y3
+	VPERMILPD  $0x05, Y3, Y4
+	VMAXPD     Y4, Y3, Y3
+
+level:
+	VCMPPD    $0x1d, one<>+0(SB), Y3, Y4
+	VMOVMSKPD Y4, DX
+	TESTL     DX, DX
+	JZ        through
+	VDIVPD    Y1, Y3, Y4
+	VADDPD    Y4, Y0, Y4
+	VCMPPD    $0x1d, Y3, Y2, Y5
+	VBLENDVPD Y5, Y4, Y1, Y1
+	VSUBPD    one<>+0(SB), Y3, Y3
+	JMP       level
+
+through:
+	VMOVUPD Y1, (AX)
+	ADDQ    $0x20, AX
+	SUBQ    $0x04, CX
+	JMP     next
+
+done:
+	VZEROUPPER
+	RET
+
+DATA fractionLeast<>+0(SB)/8, $0x4026000000000000
+DATA fractionLeast<>+8(SB)/8, $0x4026000000000000
+DATA fractionLeast<>+16(SB)/8, $0x4026000000000000
+DATA fractionLeast<>+24(SB)/8, $0x4026000000000000
+GLOBL fractionLeast<>(SB), RODATA|NOPTR, $32
+
+DATA fractionSlope<>+0(SB)/8, $0x4075e00000000000
+DATA fractionSlope<>+8(SB)/8, $0x4075e00000000000
+DATA fractionSlope<>+16(SB)/8, $0x4075e00000000000
+DATA fractionSlope<>+24(SB)/8, $0x4075e00000000000
+GLOBL fractionSlope<>(SB), RODATA|NOPTR, $32

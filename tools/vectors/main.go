@@ -28,5 +28,7 @@ func main() {
 	logAdd(c)
 	logs(c)
 	exps(c)
+	normalSeries(c)
+	normalFraction(c)
 	Generate()
 }
