@@ -19,7 +19,7 @@ declare class NodeClient extends Client {
      */
     constructor(address: string, { tls, ca, cert, key, token }: Security);
     /** Closes the connection. */
-    close: () => any;
+    close: () => void;
     /**
      * Opens a drive. To continue one, give its name again, and send the same
      * batches from the first on, which are not sent twice, or with onward those

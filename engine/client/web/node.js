@@ -48,7 +48,7 @@ class NodeClient extends Client {
       throw new Error("a token would go in the clear to another machine: give tls");
     // A server that is cut off ends no connection: it is asked, and the connection given up without an answer.
     const asks = { pingIntervalMs: 11_000, pingTimeoutMs: 5_000 };
-    let session;
+    /** @type {Http2SessionManager} */ let session;
     const transport = () => {
       const baseUrl = (encrypted ? "https://" : "http://") + addresses[0];
       session = new Http2SessionManager(baseUrl, asks, encrypted ? { ca, cert, key } : {});
