@@ -13,6 +13,7 @@ import (
 	"net"
 	"net/http"
 	"runtime"
+	"slices"
 	"strings"
 	"sync"
 	"sync/atomic"
@@ -25,6 +26,7 @@ import (
 	"google.golang.org/grpc/status"
 
 	"leadline/engine/client"
+	"leadline/engine/sensor"
 	"leadline/engine/wire"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
@@ -80,11 +82,16 @@ func TestMaliciousClients(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
+	beside := newTimed(t, conn, "timed")
+	alone := beside.times(func(n int) bool { return n < 300 })
+	var raging atomic.Int64
 	ctx, cancel := context.WithTimeout(context.Background(), time.Minute)
 	defer cancel()
 	var hostile sync.WaitGroup
 	for _, a := range attacks {
+		raging.Add(1)
 		hostile.Go(func() {
+			defer raging.Add(-1)
 			c, err := client.Dial(conn.Target())
 			if err != nil {
 				t.Error(err)
@@ -96,6 +103,8 @@ func TestMaliciousClients(t *testing.T) {
 			}
 		})
 	}
+	var among []time.Duration
+	hostile.Go(func() { among = beside.times(func(int) bool { return raging.Load() > 0 }) })
 	evs := voyage(4, 200)
 	for i, ev := range evs {
 		if err := f.Send(wire.FromEvent(ev)); err != nil {
@@ -115,6 +124,14 @@ func TestMaliciousClients(t *testing.T) {
 	}
 	close(over)
 	watch.Wait()
+	alone = append(alone, beside.times(func(n int) bool { return n < 300 })...)
+	slices.Sort(alone)
+	slices.Sort(among)
+	calm, busy := alone[len(alone)/2], among[len(among)/2]
+	t.Logf("a receipt takes %.3f ms (median of %d), beside malicious clients %.3f ms (of %d), %.2f times as long, at most %.0f ms", 1e3*calm.Seconds(), len(alone), 1e3*busy.Seconds(), len(among), busy.Seconds()/calm.Seconds(), 1e3*among[len(among)-1].Seconds())
+	if most := among[len(among)-1]; most > 5*time.Second { // survive compares medians
+		t.Errorf("a receipt took %v", most)
+	}
 	t.Logf("heap in use: %d MiB before, %d at most", before.HeapInuse>>20, most.Load()>>20)
 	if most.Load() > before.HeapInuse+400<<20 {
 		t.Errorf("the heap grew from %d to %d MiB", before.HeapInuse>>20, most.Load()>>20)
@@ -124,6 +141,49 @@ func TestMaliciousClients(t *testing.T) {
 			t.Error(line)
 		}
 	}
+}
+
+// timed is a vehicle that waits for each receipt.
+type timed struct {
+	t  *testing.T
+	st grpc.BidiStreamingClient[leadlinev1.FeedRequest, leadlinev1.FeedResponse]
+	n  uint64
+}
+
+func newTimed(t *testing.T, conn *grpc.ClientConn, vehicle string) *timed {
+	t.Helper()
+	st, err := leadlinev1.NewPositionServiceClient(conn).Feed(limited(t))
+	if err == nil {
+		err = st.Send(opening(&leadlinev1.Open{Header: header(vehicle), Drive: "d", Reply: leadlinev1.Reply_REPLY_NONE}))
+	}
+	if err == nil {
+		_, err = st.Recv()
+	}
+	if err != nil {
+		t.Fatal(err)
+	}
+	return &timed{t: t, st: st}
+}
+
+// times is how long receipts take, one after the other and a few milliseconds apart.
+func (v *timed) times(more func(n int) bool) (took []time.Duration) {
+	for len(took) == 0 || more(len(took)) {
+		v.n++
+		ev := voyage(7, 1)[0]
+		ev.Time += sensor.Time(v.n * 1e9)
+		began := time.Now()
+		err := v.st.Send(batch(v.n, ev))
+		if err == nil {
+			_, err = v.st.Recv()
+		}
+		if err != nil {
+			v.t.Error(err)
+			return append(took, time.Hour)
+		}
+		took = append(took, time.Since(began))
+		time.Sleep(2 * time.Millisecond)
+	}
+	return took
 }
 
 // endlessBatches sends batches of the largest size and reads nothing: sending
