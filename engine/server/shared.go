@@ -76,18 +76,26 @@ func (s *Server) join() error {
 	}
 	ctx, cancel := context.WithTimeout(context.Background(), time.Minute)
 	defer cancel()
-	if s.shared.maps.Maps, err = share.OpenMaps(ctx, js, b.Replicas); err == nil {
+	err = s.joinSoon(ctx, func(ctx context.Context) (err error) {
+		s.shared.maps.Maps, err = share.OpenMaps(ctx, js, b.Replicas)
+		return err
+	})
+	if err == nil {
 		err = s.shared.maps.keepFetched()
 	}
 	if err != nil {
 		return fmt.Errorf("server: %w", err)
 	}
 	self := share.Server{ID: rand.Text(), Address: s.cfg.Share.Address, Version: s.cfg.Version}
-	joined, err := share.Join(ctx, share.Options{
-		JetStream: js, Replicas: b.Replicas, Self: self, Partitions: s.journal.Partitions(), Lease: s.cfg.Share.Lease,
-		Take: s.takePartition, Log: s.cfg.Log,
-		Give: func(ctx context.Context, i int) { s.leavePartition(ctx, i, errMoved) },
-		Drop: func(i int) { s.leavePartition(cancelled, i, errLost) },
+	var joined *share.Share
+	err = s.joinSoon(ctx, func(ctx context.Context) (err error) {
+		joined, err = share.Join(ctx, share.Options{
+			JetStream: js, Replicas: b.Replicas, Self: self, Partitions: s.journal.Partitions(), Lease: s.cfg.Share.Lease,
+			Take: s.takePartition, Log: s.cfg.Log,
+			Give: func(ctx context.Context, i int) { s.leavePartition(ctx, i, errMoved) },
+			Drop: func(i int) { s.leavePartition(cancelled, i, errLost) },
+		})
+		return err
 	})
 	if err != nil {
 		return fmt.Errorf("server: %w", err)
@@ -103,6 +111,33 @@ func (s *Server) join() error {
 	s.cfg.Log.Info("shares the journal", "server", self.ID, "address", self.Address, "partitions", s.journal.Partitions())
 	return nil
 }
+
+// joinSoon does a part of joining, again while the brokers of a cluster that has just
+// started elect: for what was just made nobody answers yet, and what is asked meanwhile
+// is never answered.
+func (s *Server) joinSoon(ctx context.Context, do func(context.Context) error) error {
+	for first := true; ; first = false {
+		try, cancel := context.WithTimeout(ctx, joinTry)
+		err := do(try)
+		cancel()
+		if err == nil || ctx.Err() != nil || !share.Passing(err) {
+			return err
+		}
+		if first {
+			s.cfg.Log.Warn("the server cannot join the others yet", "error", err)
+		}
+		select {
+		case <-time.After(joinPause):
+		case <-ctx.Done():
+			return err
+		}
+	}
+}
+
+const (
+	joinTry   = 10 * time.Second
+	joinPause = 200 * time.Millisecond
+)
 
 // joined is the share; nil before and without.
 func (s *Server) joined() *share.Share {
