@@ -193,32 +193,48 @@ func (b *Belief) latticeMoments() latticeMoments {
 
 // moments are those in cells, the second ones not yet divided by the mass.
 func (t *Tiles) moments() (m latticeMoments) {
-	for i, at := range t.At {
-		for x, v := range t.tile(i) {
+	t.rows(func(north, west float64, row []float64) {
+		mass, mean := m.mass, m.mean
+		for x, v := range row {
 			if v != 0 {
-				m.mass += v
-				m.mean.E += float64(v * float64(at.Col*TileSide+int32(x%TileSide)))
-				m.mean.N += float64(v * float64(at.Row*TileSide+int32(x/TileSide)))
+				mass += v
+				mean.E += float64(v * (west + float64(x)))
+				mean.N += float64(v * north)
 			}
 		}
-	}
+		m.mass, m.mean = mass, mean
+	})
 	if m.mass == 0 {
 		return m
 	}
 	m.mean.E /= m.mass
 	m.mean.N /= m.mass
-	for i, at := range t.At {
-		for x, v := range t.tile(i) {
+	t.rows(func(north, west float64, row []float64) {
+		dn := north - m.mean.N
+		dn2 := float64(dn * dn)
+		ee, en, nn := m.ee, m.en, m.nn
+		for x, v := range row {
 			if v != 0 {
-				de := float64(at.Col*TileSide+int32(x%TileSide)) - m.mean.E
-				dn := float64(at.Row*TileSide+int32(x/TileSide)) - m.mean.N
-				m.ee += float64(v * float64(de*de))
-				m.en += float64(v * float64(de*dn))
-				m.nn += float64(v * float64(dn*dn))
+				de := west + float64(x) - m.mean.E
+				ee += float64(v * float64(de*de))
+				en += float64(v * float64(de*dn))
+				nn += float64(v * dn2)
 			}
 		}
-	}
+		m.ee, m.en, m.nn = ee, en, nn
+	})
 	return m
+}
+
+// rows calls use for the rows of all tiles: how far north a row lies and how far east its
+// first cell, in cells.
+func (t *Tiles) rows(use func(north, west float64, row []float64)) {
+	for i, at := range t.At {
+		tile := t.tile(i)
+		for r := range int32(TileSide) {
+			use(float64(at.Row*TileSide+r), float64(at.Col*TileSide), tile[r*TileSide:(r+1)*TileSide])
+		}
+	}
 }
 
 // swap installs the new tiles over a new lattice, with the mean of before and

@@ -85,6 +85,25 @@ func (w *noiseWork) blunt(t *Terms, i int, least float64) float32 {
 	return float32(float64(least*g) * w.power / w.noise(0, t.Extra[i]).a)
 }
 
+// bluntAll writes blunt of the cells that w.terms are of to their places.
+func (w *noiseWork) bluntAll(dst []float32, cells []uint16, t *Terms, least float64) {
+	if w.m != 1 {
+		for j, x := range cells {
+			dst[x] = w.blunt(t, j, least)
+		}
+		return
+	}
+	noise := w.parts[0].Cov[0]
+	for j, x := range cells {
+		dst[x] = 0
+		if flat := t.Flat[j]; flat != flat {
+			e, n := t.Row[2*j], t.Row[2*j+1]
+			g := float64(e*e) + float64(n*n)
+			dst[x] = float32(float64(least*g) * w.power / (noise + t.Extra[j]))
+		}
+	}
+}
+
 // density returns the log likelihood at a point of a lattice, on which no
 // measurement is sharper than the variance least along each axis.
 func (w *noiseWork) density(t *Terms, i int, least float64) float64 {

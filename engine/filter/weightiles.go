@@ -37,9 +37,9 @@ func (b *Belief) logTiles(space PlaneSpace, l any, w *Workspace) {
 			continue
 		}
 		blunt := w.blunt[i*tileCells : (i+1)*tileCells]
-		for j, x := range w.cells {
-			blunt[x] = ev.nw.blunt(&w.terms, j, ev.least)
-			if p != nil {
+		ev.nw.bluntAll(blunt, w.cells, &w.terms, ev.least)
+		if p != nil {
+			for j, x := range w.cells {
 				m := ev.nw.m
 				w.predictions.add(tile[x], &w.terms, j, m, w.terms.ofPosition(j, m, ev.least), &w.at, turned)
 			}
