@@ -5,6 +5,7 @@ import (
 	"encoding/json"
 	"errors"
 	"fmt"
+	"net"
 	"os"
 	"path/filepath"
 	"strings"
@@ -99,6 +100,12 @@ func demo(c *cobra.Command, o *demoOptions) error {
 		if err := checkAddress("--stay", o.stay); err != nil {
 			return err
 		}
+		// What is taken is said now, and not after all scenes.
+		l, err := net.Listen("tcp", o.stay)
+		if err != nil {
+			return fmt.Errorf("--stay %s: %w: give another address or port", o.stay, errors.Unwrap(err))
+		}
+		_ = l.Close()
 	}
 	list, err := o.scenes(c)
 	if err != nil {

@@ -34,7 +34,8 @@ func (r *rehearsal) start(listen string) (*serving, error) {
 }
 
 // stay keeps a server with its page, and has all scenes move there at their own
-// pace, again and again, as if it were now, until a signal comes.
+// pace, again and again, as if it were now, until a signal comes: then it says so,
+// within some seconds whoever is connected, and that is no failure.
 func (r *rehearsal) stay(listen string) error {
 	files := []string{}
 	for _, s := range r.Scenes {
@@ -58,7 +59,7 @@ func (r *rehearsal) stay(listen string) error {
 	ctx, cancel := context.WithCancel(context.Background())
 	defer cancel()
 	r.say("\nLook at http://%s/ where everything moves now; control-C ends it.\n", srv.address)
-	return srv.untilSignalled(slog.New(slog.DiscardHandler), time.Second, func() {
+	err = srv.untilSignalled(slog.New(slog.DiscardHandler), time.Second, func() {
 		for _, d := range drives {
 			go func() {
 				for n := 1; ctx.Err() == nil; n++ {
@@ -69,6 +70,10 @@ func (r *rehearsal) stay(listen string) error {
 			}()
 		}
 	})
+	if err == nil {
+		r.say("\nThe server has stopped; maps, drives and pictures are in %s.\n", r.Dir)
+	}
+	return err
 }
 
 // feedAsNow feeds a drive at its own pace, its times moved to now.

@@ -407,19 +407,26 @@ func (p *tab) hold(pattern string) (release func()) {
 	return func() {
 		p.t.Helper()
 		var held []string
-		for end := time.Now().Add(patience); len(held) == 0; time.Sleep(10 * time.Millisecond) {
-			p.mu.Lock()
-			held = slices.Clone(p.held)
-			p.mu.Unlock()
+		for end := time.Now().Add(patience); p.holds() == 0; time.Sleep(10 * time.Millisecond) {
 			if time.Now().After(end) {
 				p.t.Fatalf("nothing came from %s", pattern)
 			}
 		}
+		p.mu.Lock()
+		held = slices.Clone(p.held)
+		p.mu.Unlock()
 		for _, id := range held {
 			p.do("Fetch.continueRequest", map[string]any{"requestId": id}, nil)
 		}
 		p.do("Fetch.disable", nil, nil)
 	}
+}
+
+// holds is how many answers are kept back.
+func (p *tab) holds() int {
+	p.mu.Lock()
+	defer p.mu.Unlock()
+	return len(p.held)
 }
 
 // asked are the addresses that the page has asked for.
