@@ -237,8 +237,9 @@ type Posterior struct {
 	// Probability that the vehicle is lost: where neither the map nor its motion
 	// says. Those figures are then of a vehicle that is not.
 	Lost float64 `protobuf:"fixed64,36,opt,name=lost,proto3" json:"lost,omitempty"`
-	// Whether being lost is the likeliest, or was, and the vehicle has not been
-	// located since.
+	// Whether being lost is the likeliest, or was, or the whole map was searched for
+	// the vehicle, which is from a probability of being lost of 0.05 on; and the vehicle
+	// has not been located since.
 	LostAlarm bool `protobuf:"varint,37,opt,name=lost_alarm,json=lostAlarm,proto3" json:"lost_alarm,omitempty"`
 	// The alert limit of the vehicle's suite, m: what the 95 % radius must be
 	// within for the vehicle to be located.

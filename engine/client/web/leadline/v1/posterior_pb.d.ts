@@ -289,8 +289,9 @@ export declare type Posterior = Message<"leadline.v1.Posterior"> & {
   lost: number;
 
   /**
-   * Whether being lost is the likeliest, or was, and the vehicle has not been
-   * located since.
+   * Whether being lost is the likeliest, or was, or the whole map was searched for
+   * the vehicle, which is from a probability of being lost of 0.05 on; and the vehicle
+   * has not been located since.
    *
    * @generated from field: bool lost_alarm = 37;
    */
