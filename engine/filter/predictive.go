@@ -31,6 +31,12 @@ type Predictive struct {
 	// Below and Above are the probabilities of less and of more, both kept for
 	// the digits of their tails.
 	Below, Above [2]float64
+	// Weighed says that Wider was computed: for noise with a flat part, and not on a
+	// circle. Wider is ln of how much denser a component would be if all that is not
+	// flat were spread twice as wide, of the second given the first. A score hides
+	// it: with 2 % of outliers an error of three sigmas has one of 2.2.
+	Weighed bool
+	Wider   [2]float64
 }
 
 // Score is the normal score Φ⁻¹(Below) of a component: standard normal if the
@@ -141,6 +147,8 @@ func (q *predictions) into(p *Predictive, noise *Noise, m int, circular bool) {
 	}
 	var sum [2]tails
 	given := 0.0 // density of the first component, weighted
+	var as, wide [2]float64
+	p.Weighed = noise.FlatWeight > 0 && !circular
 	for i, mass := range q.mass {
 		mass /= known
 		if circular {
@@ -155,7 +163,13 @@ func (q *predictions) into(p *Predictive, noise *Noise, m int, circular bool) {
 		for c := range noise.Parts {
 			s, weight := q.spread(i, c, m, noise), mass*noise.Parts[c].Weight
 			if m == 1 {
-				sum[0].add(weight, normalTails((r[0]-noise.Parts[c].Mean)/math.Sqrt(s.a)))
+				sigma := math.Sqrt(s.a)
+				z := (r[0] - noise.Parts[c].Mean) / sigma
+				sum[0].add(weight, normalTails(z))
+				if p.Weighed {
+					as[0] += float64(weight*kernel.NormalDensity(z)) / sigma
+					wide[0] += float64(0.5*weight*kernel.NormalDensity(0.5*z)) / sigma
+				}
 				continue
 			}
 			s = s.turned(turn)
@@ -164,12 +178,25 @@ func (q *predictions) into(p *Predictive, noise *Noise, m int, circular bool) {
 			sum[0].add(weight, normalTails(z))
 			slope := s.b / s.a
 			density := float64(weight*kernel.NormalDensity(z)) / sigma
-			sum[1].add(density, normalTails((r[1]-float64(slope*r[0]))/math.Sqrt(s.c-float64(slope*s.b))))
+			rest := math.Sqrt(s.c - float64(slope*s.b))
+			y := (r[1] - float64(slope*r[0])) / rest
+			sum[1].add(density, normalTails(y))
 			given += density
+			if p.Weighed {
+				as[1] += float64(density*kernel.NormalDensity(y)) / rest
+				half := float64(0.5*weight*kernel.NormalDensity(0.5*z)) / sigma
+				wide[0] += half
+				wide[1] += float64(0.5*half*kernel.NormalDensity(0.5*y)) / rest
+			}
 		}
 		if flat := mass * noise.FlatWeight; flat > 0 {
 			if m == 1 {
-				sum[0].add(flat, uniformTails(float64(r[0]*noise.FlatDensity)))
+				at := float64(r[0] * noise.FlatDensity)
+				sum[0].add(flat, uniformTails(at))
+				if math.Abs(at) <= 0.5 {
+					as[0] += float64(flat * noise.FlatDensity)
+					wide[0] += float64(flat * noise.FlatDensity)
+				}
 				continue
 			}
 			side := math.Sqrt(noise.FlatDensity)
@@ -178,10 +205,24 @@ func (q *predictions) into(p *Predictive, noise *Noise, m int, circular bool) {
 			if math.Abs(first) <= 0.5 {
 				sum[1].add(flat*side, uniformTails(float64(r[1]*side)))
 				given += flat * side
+				wide[0] += flat * side
+				if math.Abs(float64(r[1]*side)) <= 0.5 {
+					as[1] += float64(flat * noise.FlatDensity)
+					wide[1] += float64(flat * noise.FlatDensity)
+				}
 			}
 		}
 	}
 	p.Rows, p.Below[0], p.Above[0] = 1, sum[0].below, sum[0].above
+	if m == 2 {
+		as[0] = given
+	}
+	if p.Weighed = p.Weighed && as[0] > 0 && (m == 1 || as[1] > 0); p.Weighed {
+		p.Wider[0] = kernel.Log(wide[0] / as[0])
+		if m == 2 {
+			p.Wider[1] = kernel.Log(wide[1]/as[1]) - p.Wider[0]
+		}
+	}
 	if m == 2 && given > 0 {
 		p.Rows, p.Below[1], p.Above[1] = 2, sum[1].below/given, sum[1].above/given
 	}

@@ -42,6 +42,15 @@ func (s statistic) ratio(z float64) float64 {
 	return float64(spreadGain*float64(z*z)) - logSpreadRatio
 }
 
+// widening is what a score says of the spread: what was computed, where it was, within
+// what a score may say.
+func widening(z float64, ratios []float64, row int) float64 {
+	if row < len(ratios) {
+		return math.Max(-logSpreadRatio, math.Min(spread.ratio(mostScore), ratios[row]))
+	}
+	return spread.ratio(z)
+}
+
 const spreadGain = 0.5 * (1 - 1/(spreadRatio*spreadRatio))
 
 var logSpreadRatio = kernel.Log(spreadRatio)
@@ -85,7 +94,10 @@ type chart struct {
 // The sum stays at the threshold while it is alarmed, and the alarm ends when it
 // is back at 0: when as much has spoken for what was expected as had to speak
 // against it.
-func (c *chart) take(at int64, z, everyS float64) {
+func (c *chart) take(at int64, z, everyS float64) { c.add(at, c.what.ratio(z), everyS) }
+
+// add is take of what a score says, in nats.
+func (c *chart) add(at int64, ratio, everyS float64) {
 	if c.taken == 0 {
 		c.first = at
 	}
@@ -93,7 +105,7 @@ func (c *chart) take(at int64, z, everyS float64) {
 	if c.sum == 0 {
 		c.began = at
 	}
-	c.sum = math.Max(0, c.sum+c.what.ratio(z))
+	c.sum = math.Max(0, c.sum+ratio)
 	c.limit = c.threshold(at, everyS)
 	switch {
 	case c.sum >= c.limit:

@@ -89,7 +89,7 @@ func (m *Monitor) Due(k Key, at int64, odometerM, spacingS, spacingM float64) bo
 func (m *Monitor) TakeOfMap(k Key, at int64, odometerM float64, scores []float64) {
 	s, _ := m.sensor(k, at, odometerM)
 	s.ofMap = true
-	s.take(at, scores, m.everyS)
+	s.take(at, scores, nil, m.everyS)
 }
 
 // sensor is the one of a key, which has sent something.
@@ -104,15 +104,17 @@ func (m *Monitor) sensor(k Key, at int64, odometerM float64) (s *sensor, i int) 
 }
 
 // Take adds a measurement's scores, one or two. Those of a sensor that is
-// isolated tell whether it may come back, and nothing of the belief.
-func (m *Monitor) Take(k Key, at int64, odometerM float64, scores []float64) {
+// isolated tell whether it may come back, and nothing of the belief. ratios are how
+// much each component speaks for twice the spread, ln, where the scores do not say
+// so, because of outliers; nil where they do.
+func (m *Monitor) Take(k Key, at int64, odometerM float64, scores, ratios []float64) {
 	s, i := m.sensor(k, at, odometerM)
-	for _, z := range scores {
-		if !s.isolated {
-			m.all.take(at, z, m.everyS)
+	if !s.isolated {
+		for row, z := range scores {
+			m.all.add(at, widening(z, ratios, row), m.everyS)
 		}
 	}
-	s.take(at, scores, m.everyS)
+	s.take(at, scores, ratios, m.everyS)
 	m.isolate(i, at)
 }
 

@@ -33,7 +33,7 @@ func TestRuleOfIsolation(t *testing.T) {
 		m := New(3.6e6)
 		for i := range 300 {
 			for j, k := range c.keys {
-				m.Take(k, seconds(i), 0, []float64{c.err[j] * rng.NormFloat64()})
+				m.Take(k, seconds(i), 0, []float64{c.err[j] * rng.NormFloat64()}, nil)
 			}
 			if c.ofMap {
 				m.TakeOfMap(Key{Sensor: "road"}, seconds(i), 0, []float64{rng.NormFloat64()})
@@ -57,7 +57,7 @@ func TestRuleOfIsolation(t *testing.T) {
 			if i > 450 {
 				t.Fatalf("%s: not readmitted: %+v", c.name, m.Alarms())
 			}
-			m.Take(first, seconds(i), 0, []float64{rng.NormFloat64()})
+			m.Take(first, seconds(i), 0, []float64{rng.NormFloat64()}, nil)
 		}
 	}
 }
@@ -123,7 +123,7 @@ func TestDue(t *testing.T) {
 	if !m.Due(first, 0, 0, 1, 100) {
 		t.Error("the first is not due")
 	}
-	m.Take(first, 0, 0, []float64{0})
+	m.Take(first, 0, 0, []float64{0}, nil)
 	for _, c := range []struct {
 		s, way float64
 		due    bool

@@ -32,7 +32,7 @@ func newSensor(k Key) sensor {
 // recent is over how many measurements mean and mean square go.
 const recent = 60
 
-func (s *sensor) take(at int64, scores []float64, everyS float64) {
+func (s *sensor) take(at int64, scores, ratios []float64, everyS float64) {
 	s.rows = max(s.rows, len(scores))
 	s.taken++
 	// As many charts as there are share the false alarms out.
@@ -42,7 +42,7 @@ func (s *sensor) take(at int64, scores []float64, everyS float64) {
 	}
 	var mean, square float64
 	for row, z := range scores {
-		s.spread.take(at, z, each)
+		s.spread.add(at, widening(z, ratios, row), each)
 		if !s.ofMap {
 			s.shift[2*row].take(at, z, each)
 			s.shift[2*row+1].take(at, z, each)

@@ -48,11 +48,15 @@ func (s *Session) weigh(ev sensor.Event, l any) {
 		for row := range fell.Rows {
 			scores[row] = fell.Score(row)
 		}
-		take := st.monitor.Take
-		if ev.Sensor == roadSensor {
-			take = st.monitor.TakeOfMap
+		var ratios []float64
+		if fell.Weighed {
+			ratios = fell.Wider[:fell.Rows]
 		}
-		take(key, int64(ev.Time), st.odometerM, scores[:fell.Rows])
+		if ev.Sensor == roadSensor {
+			st.monitor.TakeOfMap(key, int64(ev.Time), st.odometerM, scores[:fell.Rows])
+		} else {
+			st.monitor.Take(key, int64(ev.Time), st.odometerM, scores[:fell.Rows], ratios)
+		}
 	}
 	if st.aside.off >= offExplains {
 		st.monitor.Answered()
