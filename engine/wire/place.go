@@ -40,7 +40,7 @@ func FromPosition(p geo.LonLat) *leadlinev1.Position {
 }
 
 // Polygon converts an area: one ring at least, three points a ring, MaxPoints
-// in all.
+// in all, which do not cross themselves or each other.
 func Polygon(m *leadlinev1.Polygon) ([][]geo.LonLat, error) {
 	if len(m.GetRings()) == 0 {
 		return nil, fmt.Errorf("no ring: give the outside as rings[0].points")
@@ -65,7 +65,7 @@ func Polygon(m *leadlinev1.Polygon) ([][]geo.LonLat, error) {
 			}
 		}
 	}
-	return rings, nil
+	return rings, simple(rings)
 }
 
 // FromPolygon is the inverse of Polygon.
