@@ -22,17 +22,16 @@ func TestAhead(t *testing.T) {
 	w, _ := invented()
 	bay := w.maps[1].Name
 	p := b.open(t, r.origin+"/#ahead", 1440, 900, false)
-	choose := func(name, option string) {
-		t.Helper()
-		eval[any](p, fmt.Sprintf("(() => { const s = document.querySelector('[name=%s]'); s.value = %q; s.dispatchEvent(new Event('change', {bubbles: true})); })()", name, option))
-	}
+	const mapBox, suiteBox = "document.querySelector('[name=map]')", "document.querySelector('[name=suite]')"
 	load := func(name, content string) {
 		t.Helper()
 		eval[any](p, fmt.Sprintf("(() => { const d = new DataTransfer(); d.items.add(new File([%s], %q)); const f = document.querySelector('[name=route]'); f.files = d.files; f.dispatchEvent(new Event('change', {bubbles: true})); })()", content, name))
 	}
 	p.await("the maps", fmt.Sprintf("[...document.querySelectorAll('[name=map] option')].some(o => o.value === %q)", bay))
-	choose("map", bay)
-	choose("suite", "survey-craft")
+	p.chooseByMouse(mapBox, "open-sea")
+	p.chooseByMouse(mapBox, bay)
+	p.chooseByMouse(suiteBox, "truck")
+	p.chooseByMouse(suiteBox, "survey-craft")
 	p.says(".legend", "height")
 
 	large := filepath.Join(t.TempDir(), "<b>large.geojson")
@@ -85,7 +84,11 @@ func TestAhead(t *testing.T) {
 	p.audit("ahead")
 	p.looks("ahead")
 
-	// The same by keyboard: a route of two points.
+	// The same by keyboard: on another map and back, and a route of two points.
+	p.chooseByKeys(mapBox, w.maps[2].Name)
+	p.chooseByKeys(mapBox, bay)
+	p.chooseByKeys(suiteBox, "truck")
+	p.chooseByKeys(suiteBox, "survey-craft")
 	p.tabTo("[...document.querySelectorAll('button')].find(e => e.innerText === 'Draw the route')")
 	p.press("Enter")
 	eval[any](p, "document.querySelector('.ground').focus()")

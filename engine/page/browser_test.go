@@ -188,8 +188,8 @@ func (p *tab) hear(method string, params json.RawMessage) {
 	}
 }
 
-// open opens a page in a window of a size.
-func (b *browser) open(t *testing.T, url string, width, height int, dark bool) *tab {
+// open opens a page in a window of a size, with scripts that run before its own.
+func (b *browser) open(t *testing.T, url string, width, height int, dark bool, before ...string) *tab {
 	t.Helper()
 	var profile struct{ BrowserContextID string }
 	var target struct{ TargetID string }
@@ -222,6 +222,9 @@ func (b *browser) open(t *testing.T, url string, width, height int, dark bool) *
 	}
 	p.do("Emulation.setEmulatedMedia", map[string]any{"features": []map[string]string{{"name": "prefers-color-scheme", "value": scheme}}}, nil)
 	p.resize(width, height)
+	for _, script := range before {
+		p.do("Page.addScriptToEvaluateOnNewDocument", map[string]any{"source": script}, nil)
+	}
 	p.do("Page.navigate", map[string]any{"url": url}, nil)
 	t.Cleanup(func() { _ = b.call("", "Target.closeTarget", map[string]any{"targetId": target.TargetID}, nil) })
 	return p

@@ -99,7 +99,7 @@ func TestEnding(t *testing.T) {
 		return fmt.Sprintf("[...document.querySelectorAll('dialog button')].find(e => e.innerText === %q)", words)
 	}
 	p.click(button("van"))
-	p.says("dialog", "End the drive drive of van?")
+	p.says("dialog", "End the drive “drive” of van?")
 	p.audit("a question")
 	p.shoot("ending-light")
 	p.click(answer("End it"))
@@ -124,7 +124,7 @@ func TestEnding(t *testing.T) {
 	p.await("the harmless answer has the focus again", "document.activeElement === "+answer("Leave it"))
 	p.tabTo(answer("End it"))
 	p.press("Enter")
-	p.says("#end-answer", fmt.Sprintf("The drive drive of van has ended: %d measurements taken, 0 refused,", len(upTo(w.van, 5))))
+	p.says("#end-answer", fmt.Sprintf("The drive “drive” of van has ended: %d measurements taken, 0 refused,", len(upTo(w.van, 5))))
 	p.says("main .side", "The drive has ended.")
 	p.says("main .list", "ended")
 	if got := ended(); !slices.Equal(got, []string{"van"}) {
@@ -140,7 +140,7 @@ func TestEnding(t *testing.T) {
 	p.click(button("<b>craft</b>"))
 	p.audit("a question, dark")
 	p.click(answer("End it"))
-	p.says("#end-answer", "The drive drive of <b>craft</b> has ended:")
+	p.says("#end-answer", "The drive “drive” of <b>craft</b> has ended:")
 	p.await("the table says so", "[...document.querySelectorAll('#drives tbody tr')].every(e => e.innerText.includes('ended'))")
 	if got := ended(); !slices.Equal(got, []string{"<b>craft</b>", "van"}) {
 		t.Errorf("the server has ended %q", got)

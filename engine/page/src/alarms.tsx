@@ -1,6 +1,6 @@
 // Alarms and their lives.
 import { signal } from "@preact/signals";
-import { useEffect } from "preact/hooks";
+import { useEffect, useRef } from "preact/hooks";
 import type { AlarmRecord } from "../../client/web/leadline/v1/alarm_pb.js";
 import { calls, sentence, soon } from "./api";
 import { clockTimes, duration, millis } from "./format";
@@ -105,9 +105,14 @@ export function Alarms() {
 export function AlarmSound() {
   const fresh = openAlarms.value.filter((a) => !a.seenAt);
   const last = fresh.reduce((most, a) => (a.number > most ? a.number : most), 0n);
+  const newest = [...alarms.value.keys()].reduce((most, n) => (n > most ? n : most), 0n);
+  const heard = useRef(0n);
   useEffect(() => {
-    if (last > 0n && sound.value) beep();
-  }, [last]);
+    if (newest < heard.current) heard.current = 0n; // a server that was started anew counts anew
+    if (last <= heard.current) return; // what is left when the newest has been seen is not new
+    heard.current = last;
+    if (sound.value) beep();
+  }, [last, newest]);
   const a = fresh.find((x) => x.number === last);
   return (
     <p class="unseen" role="alert">
@@ -116,7 +121,12 @@ export function AlarmSound() {
   );
 }
 
+/** When it last sounded, ms; alarms that come together sound together. */
+let sounded = -Infinity;
+
 function beep() {
+  if (performance.now() - sounded < 1000) return;
+  sounded = performance.now();
   try {
     const audio = new AudioContext();
     const [tone, gain] = [audio.createOscillator(), audio.createGain()];

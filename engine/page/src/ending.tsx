@@ -15,7 +15,7 @@ const trouble = signal("");
 /** How often a drive has been ended here. */
 export const endings = signal(0);
 
-const named = (d: Drive) => `drive ${d.drive} of ${d.vehicle}`;
+const named = (d: Drive) => `drive “${d.drive}” of ${d.vehicle}`;
 
 async function end(d: Drive) {
   asked.value = undefined;

@@ -31,7 +31,7 @@ export function Figures() {
       <dl class="pairs">
         <dt>As of</dt>
         <dd>{clockTimes(p.time!)}</dd>
-        <dt>{radiiHold(p) ? "Within, at 50, 95, 99 %" : "If it is not lost, at 50, 95, 99 %"}</dt>
+        <dt>{radiiHold(p) ? "Within, at 50, 95, 99\u00a0%" : "If it is not lost, at 50, 95, 99\u00a0%"}</dt>
         <dd>
           {length(p.radii!.radius50M)}, {length(p.radii!.radius95M)}, {length(p.radii!.radius99M)}
         </dd>

@@ -46,7 +46,7 @@ function Row({ name }: { name: string }) {
             </>
           ) : (
             <>
-              <b>No radius holds 95 %</b>; if it is not lost, {length(p.radii?.radius95M ?? Infinity)}
+              <b>No 95{"\u00a0"}% radius</b>: it may be lost. If it is not, within {length(p.radii?.radius95M ?? Infinity)}
             </>
           )}
           , limit {length(p.alertLimitM)}
