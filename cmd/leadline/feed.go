@@ -9,7 +9,6 @@ import (
 	"net"
 	"os"
 	"strings"
-	"sync/atomic"
 	"time"
 
 	"github.com/spf13/cobra"
@@ -118,15 +117,16 @@ func feed(c *cobra.Command, o *feedOptions, path string) error {
 	if len(d.Events) == 0 {
 		return fmt.Errorf("%s: %w", path, replay.ErrNoMeasurements)
 	}
-	closed, refusal, err := o.send(c.ErrOrStderr(), d, driveName(path))
+	var refused refusals
+	closed, err := o.send(c.ErrOrStderr(), d, driveName(path), &refused)
 	if err != nil {
 		return fmt.Errorf("%s: %w", path, o.failed(err))
 	}
-	return o.conclude(c, path, driveName(path), closed, refusal)
+	return o.conclude(c, path, driveName(path), closed, &refused)
 }
 
 // conclude prints what the server says at the end, and judges it.
-func (o *feedOptions) conclude(c *cobra.Command, path, name string, closed *leadlinev1.Closed, refusal error) error {
+func (o *feedOptions) conclude(c *cobra.Command, path, name string, closed *leadlinev1.Closed, refused *refusals) error {
 	if o.asJSON {
 		if err := printMessage(c.OutOrStdout(), closed); err != nil {
 			return err
@@ -139,29 +139,32 @@ func (o *feedOptions) conclude(c *cobra.Command, path, name string, closed *lead
 			name, closed.GetPosteriors(), closed.GetAccepted()+closed.GetRefused(), closed.GetRefused(), closed.GetPosteriorSha256())
 		printPosterior(c.OutOrStdout(), closed.GetPosterior())
 	}
-	if n := closed.GetRefused(); n > 0 && !o.allowRefused {
+	own, first := refused.own()
+	if others := closed.GetRefused() - min(own, closed.GetRefused()); others > 0 {
+		fmt.Fprintf(c.ErrOrStderr(), "note: the server refused %s of this drive that this feed was not told of: an earlier feed's, or sightings that people entered\n", count(int(others), "more measurement"))
+	}
+	if own > 0 && !o.allowRefused {
 		return fmt.Errorf("%s: %d of %d measurements were refused, first %w; with --allow-refused this is no error",
-			path, n, n+closed.GetAccepted(), refusal)
+			path, own, closed.GetRefused()+closed.GetAccepted(), first)
 	}
 	return nil
 }
 
 // send carries a drive to the server, in the order of events.
-func (o *feedOptions) send(errs io.Writer, d *drivefile.Drive, name string) (*leadlinev1.Closed, error, error) {
+func (o *feedOptions) send(errs io.Writer, d *drivefile.Drive, name string, refused *refusals) (*leadlinev1.Closed, error) {
 	conn, err := o.dial()
 	if err != nil {
-		return nil, nil, err
+		return nil, err
 	}
 	defer conn.Close()
 	ctx, cancel := context.WithCancel(context.Background())
 	defer cancel()
-	var first atomic.Pointer[leadlinev1.Refusal]
 	f, err := client.Open(ctx, conn, client.Drive{
 		Header: wire.FromHeader(d.Header), Replace: o.replace, Reply: leadlinev1.Reply_REPLY_NONE,
-		OnRefusal: func(r *leadlinev1.Refusal) { first.CompareAndSwap(nil, r) },
+		OnRefusal: refused.add,
 	})
 	if err != nil {
-		return nil, nil, err
+		return nil, err
 	}
 	show, end := progress(errs, name)
 	defer end()
@@ -172,25 +175,20 @@ func (o *feedOptions) send(errs io.Writer, d *drivefile.Drive, name string) (*le
 			if wait := due(events[0].Time, ev.Time, o.speed) - time.Since(began); wait > 0 {
 				if err := f.Flush(); err != nil {
 					f.Abort()
-					return nil, nil, err
+					return nil, err
 				}
 				time.Sleep(wait)
 			}
 		}
 		if err := f.Send(wire.FromEvent(ev)); err != nil {
 			f.Abort()
-			return nil, nil, err
+			return nil, err
 		}
 		if show != nil && i%32 == 0 {
 			show(i, len(events))
 		}
 	}
-	closed, err := f.Close()
-	var refusal error
-	if r := first.Load(); r != nil {
-		refusal = refusalError(r)
-	}
-	return closed, refusal, err
+	return f.Close()
 }
 
 // due is how long after the first event of a drive another one is sent.
@@ -223,15 +221,6 @@ func sentences(err error, next string) error {
 		return fmt.Errorf("%w %s", err, next)
 	}
 	return fmt.Errorf("%w. %s", err, next)
-}
-
-// refusalError words a refusal as replay does.
-func refusalError(r *leadlinev1.Refusal) error {
-	t, err := wire.Time(r.GetTime())
-	if err != nil {
-		return fmt.Errorf("a measurement without a time was refused: %s", r.GetDetail())
-	}
-	return replay.Refusal{Time: t, Sensor: r.GetSensor(), Number: r.GetNumber(), Reason: reasonText(r.GetReason()), Detail: r.GetDetail()}
 }
 
 // checkAddress wants HOST:PORT: without a port another one would be tried.

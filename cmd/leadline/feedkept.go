@@ -161,13 +161,13 @@ func (o *feedOptions) sendKept(c *cobra.Command) error {
 		return err
 	}
 	defer conn.Close()
-	var first atomic.Pointer[leadlinev1.Refusal]
+	var refused refusals
 	s, err := o.openKept(c.ErrOrStderr(), conn, client.Drive{
 		Name: o.drive, Replace: o.replace, Reply: leadlinev1.Reply_REPLY_NONE,
-		OnRefusal: func(r *leadlinev1.Refusal) { first.CompareAndSwap(nil, r) },
+		OnRefusal: refused.add,
 	}, o.address)
 	if err != nil {
 		return err
 	}
-	return o.end(c, s, o.keep, s.Name(), &first)
+	return o.end(c, s, o.keep, s.Name(), &refused)
 }

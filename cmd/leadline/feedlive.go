@@ -7,7 +7,6 @@ import (
 	"io"
 	"os"
 	"os/signal"
-	"sync/atomic"
 	"syscall"
 	"time"
 
@@ -94,10 +93,10 @@ func (o *feedOptions) live(c *cobra.Command, from string) error {
 	if err != nil {
 		return err
 	}
-	var first atomic.Pointer[leadlinev1.Refusal]
+	var refused refusals
 	f, err := o.openSink(errs, conn, client.Drive{
 		Header: wire.FromHeader(header), Name: o.drive, Replace: o.replace, Continue: true, Reply: leadlinev1.Reply_REPLY_NONE,
-		OnRefusal: func(r *leadlinev1.Refusal) { first.CompareAndSwap(nil, r) },
+		OnRefusal: refused.add,
 	})
 	if err != nil {
 		return fmt.Errorf("%s: %w", from, serverError(err, o.address))
@@ -118,11 +117,11 @@ func (o *feedOptions) live(c *cobra.Command, from string) error {
 	}
 	untimed := n.End()
 	o.told(errs, n.Tally())
-	return errors.Join(o.end(c, f, from, header.Vehicle, &first), untimed)
+	return errors.Join(o.end(c, f, from, header.Vehicle, &refused), untimed)
 }
 
 // end ends a feed of a drive, or leaves the drive open.
-func (o *feedOptions) end(c *cobra.Command, f sink, from, vehicle string, first *atomic.Pointer[leadlinev1.Refusal]) error {
+func (o *feedOptions) end(c *cobra.Command, f sink, from, vehicle string, refused *refusals) error {
 	if o.leaveOpen {
 		if err := f.Leave(); err != nil {
 			return fmt.Errorf("%s: %w", from, o.broken(err, f.Name()))
@@ -134,11 +133,7 @@ func (o *feedOptions) end(c *cobra.Command, f sink, from, vehicle string, first 
 	if err != nil {
 		return fmt.Errorf("%s: %w", from, o.broken(err, f.Name()))
 	}
-	var refusal error
-	if r := first.Load(); r != nil {
-		refusal = refusalError(r)
-	}
-	return o.conclude(c, from, vehicle, closed, refusal)
+	return o.conclude(c, from, vehicle, closed, refused)
 }
 
 // sink is where measurements of instruments go: to a server, or first into a file.
