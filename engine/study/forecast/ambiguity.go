@@ -89,7 +89,7 @@ func (p *Plan) worldFrom(t float64) *world {
 	for i, d := range p.sensors {
 		w.next[i] = int(math.Ceil(t * d.hz))
 		if sensor.IsMotion(d.Kind) && d.Kind != sensor.KindSpeed {
-			w.next[i] = int(math.Floor(t*d.hz)) + 1
+			w.next[i] = tickAfter(t, d.hz)
 		}
 		w.acc[i] = gathered{sinceS: t}
 	}
@@ -97,6 +97,19 @@ func (p *Plan) worldFrom(t float64) *world {
 		w.fixes++
 	}
 	return w
+}
+
+// leastIncrementS is the least time that an increment is given: far more than what
+// rounding makes of a time that falls on a tick, and far less than a tick.
+const leastIncrementS = 1e-6
+
+// tickAfter is the first tick at which a sensor speaks that gathers from a time on.
+func tickAfter(t, hz float64) int {
+	n := int(math.Floor(t*hz)) + 1
+	if float64(n)/hz-t < leastIncrementS {
+		n++
+	}
+	return n
 }
 
 // elsewhere is the part of a session's belief farther than the limit from a place.

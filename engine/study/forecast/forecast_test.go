@@ -7,10 +7,12 @@ import (
 	"math"
 	"reflect"
 	"runtime"
+	"slices"
 	"strings"
 	"testing"
 
 	"leadline/engine/geo"
+	"leadline/engine/sensor"
 	"leadline/engine/study/track"
 )
 
@@ -155,5 +157,67 @@ func TestPlanWrong(t *testing.T) {
 	}
 	if _, err := NewPath(space, off, 1e-6); err == nil || !strings.Contains(err.Error(), "it takes") {
 		t.Errorf("too slow: %v", err)
+	}
+}
+
+// TestBeginsOnATick: a forecast may begin anywhere along the way, also where a
+// sensor speaks but for rounding: the first increment has a length all the same,
+// and no more than that of two ticks.
+func TestBeginsOnATick(t *testing.T) {
+	suite := parsed(t, flyingSuite)
+	space := over(hills)
+	f := space.Frame()
+	r := &Route{Name: "straight", Points: []geo.LonLat{f.Inverse(geo.Point{E: -2010}), f.Inverse(geo.Point{E: 1887})}}
+	short := 0
+	for _, speed := range []float64{2.5, 3, 7, 10, 20, 30} {
+		path, err := NewPath(space, r, speed)
+		if err != nil {
+			t.Fatal(err)
+		}
+		for _, hz := range []float64{0.7, 1, 5, 10, 100} {
+			p, err := NewPlan(path, suite, map[string]float64{"ins": hz}, 20)
+			if err != nil {
+				t.Fatal(err)
+			}
+			for k := range 40 {
+				tick := path.timeAt(float64(k) * 97)
+				for _, from := range []float64{tick, math.Floor(tick*hz) / hz, math.Nextafter(math.Ceil(tick*hz)/hz, 0), math.Ceil(tick*hz)/hz - 4e-10} {
+					w := p.worldFrom(math.Max(from, 0))
+					for i, d := range w.sensors {
+						if d.Name != "ins" {
+							continue
+						}
+						if n := float64(w.next[i]) - w.t*hz; at(float64(w.next[i])/hz) <= at(w.t) || n > 2 {
+							t.Errorf("%v m/s, %v Hz: from %v s on the first increment is %v ticks", speed, hz, w.t, n)
+							short++
+						}
+					}
+					for w.more() && len(w.events) < 3 {
+						if err := w.step(); err != nil {
+							t.Fatalf("%v m/s, %v Hz, from %v s: %v", speed, hz, from, err)
+						}
+					}
+				}
+			}
+		}
+	}
+	if short > 0 {
+		t.Errorf("%d beginnings without a first increment", short)
+	}
+}
+
+// TestHintOfNoise: what a suite's noise would mend is said of a suite that lacks it,
+// and of nothing else.
+func TestHintOfNoise(t *testing.T) {
+	const hint = "a forecast needs each sensor's noise in the suite"
+	p := flown(t, over(hills), parsed(t, flyingSuite), 20)
+	w := p.world(nil)
+	d := w.sensors[slices.IndexFunc(w.sensors, func(s planned) bool { return s.Name == "ins" })].Sensor
+	if _, err := w.sigmas(d, sensor.Displacement{Since: at(w.t), EastM: 1}); err == nil || strings.Contains(err.Error(), hint) {
+		t.Errorf("an increment without a length: %v", err)
+	}
+	_, err := NewPlan(p.Path, parsed(t, "sensors: [{name: a, kind: displacement}]"), nil, 1)
+	if err == nil || !strings.Contains(err.Error(), hint) {
+		t.Errorf("a suite without noise: %v", err)
 	}
 }

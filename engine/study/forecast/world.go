@@ -242,8 +242,11 @@ func (w *world) measure(which, tick int) error {
 // sigmas is a measurement with the suite's noise filled in.
 func (w *world) sigmas(d sensor.Sensor, m sensor.Measurement) (sensor.Measurement, error) {
 	ev, err := w.Suite.Prepare(raw(d, sensor.Event{Time: at(w.t), Sensor: d.Name, Measurement: m}))
-	if err != nil {
+	switch {
+	case err != nil && noiseless(ev.Measurement):
 		return nil, fmt.Errorf("%w (a forecast needs each sensor's noise in the suite)", err)
+	case err != nil:
+		return nil, err
 	}
 	return ev.Measurement, nil
 }
