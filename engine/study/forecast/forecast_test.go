@@ -158,6 +158,36 @@ func TestPlanWrong(t *testing.T) {
 	if _, err := NewPath(space, off, 1e-6); err == nil || !strings.Contains(err.Error(), "it takes") {
 		t.Errorf("too slow: %v", err)
 	}
+	for _, speed := range []float64{math.NaN(), math.Inf(1), -1} {
+		if _, err := NewPath(space, off, speed); err == nil || !strings.Contains(err.Error(), "must be a number above 0") {
+			t.Errorf("%v m/s: %v", speed, err)
+		}
+	}
+	for _, c := range []struct {
+		vehicle string
+		speed   float64
+		want    string
+	}{
+		{"", 399, ""},
+		{"", 401, "beyond 10 times the 40 of a suite without vehicle.max_speed_mps"},
+		{"vehicle: {max_speed_mps: 30}", 30, ""},
+		{"vehicle: {max_speed_mps: 30}", 30.1, "the suite's vehicle.max_speed_mps 30: give a lower speed, or raise max_speed_mps"},
+		{"vehicle: {max_speed_mps: 30}", 1e9, "the speed is 1e+09 m/s"},
+		{"vehicle: {max_speed_mps: 500}", 450, ""},
+	} {
+		fast, err := NewPath(space, off, c.speed)
+		if err != nil {
+			t.Fatal(err)
+		}
+		suite := parsed(t, c.vehicle+flyingSuite)
+		_, err = NewPlan(fast, suite, nil, 1)
+		_, err2 := Heights(space, suite, []geo.Point{{}}, WholeOptions{SpeedMPS: c.speed})
+		for _, err := range []error{err, err2} {
+			if c.want == "" && err != nil || c.want != "" && (err == nil || !strings.Contains(err.Error(), c.want)) {
+				t.Errorf("%s at %v m/s: %v, want %q", c.vehicle, c.speed, err, c.want)
+			}
+		}
+	}
 }
 
 // TestBeginsOnATick: a forecast may begin anywhere along the way, also where a

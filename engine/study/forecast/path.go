@@ -76,6 +76,8 @@ const maxPathS = 24 * 3600
 // clock says when which place is reached.
 func (p *Path) clock(wayM []float64, times []time.Time, speedMPS float64) error {
 	switch {
+	case speedMPS != 0 && !(speedMPS > 0 && speedMPS <= math.MaxFloat64):
+		return fmt.Errorf("the speed is %v m/s: it must be a number above 0", speedMPS)
 	case speedMPS > 0:
 		p.wayM, p.timeS = []float64{0, p.lengthM}, []float64{0, p.lengthM / speedMPS}
 	case times == nil:

@@ -68,6 +68,9 @@ func NewPlan(path *Path, suite *sensor.Suite, rates map[string]float64, startSig
 	}
 	p.Suite = suite.For(p.dim)
 	p.qs = p.Suite.Quantities(p.dim)
+	if err := checkSpeed(suite, p.Suite, path.lengthM/path.durationS()); err != nil {
+		return nil, err
+	}
 	if !(startSigmaM > 0 && startSigmaM <= 1e6) {
 		return nil, fmt.Errorf("the start's sigma is %v m: it must be above 0 and at most 1e6", startSigmaM)
 	}

@@ -68,6 +68,11 @@ type was struct {
 
 // run is one drive and its filter.
 func (p *Plan) run(samples []float64, rng *rand.Rand, maxCells int) ([]seen, error) {
+	if p.stop != nil {
+		if err := p.stop(); err != nil {
+			return nil, err
+		}
+	}
 	w := p.world(rng)
 	first := w.truth()
 	off := geo.Point{E: rng.NormFloat64() * p.Start, N: rng.NormFloat64() * p.Start}

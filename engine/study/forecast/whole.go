@@ -32,6 +32,16 @@ type Spot struct {
 type WholeOptions struct {
 	SpeedMPS, StretchM, LimitM float64
 	Rates                      map[string]float64
+	// Stop, if set, is asked often: an error of it ends
+	// the look.
+	Stop func() error
+}
+
+func (o *WholeOptions) stopped() error {
+	if o.Stop == nil {
+		return nil
+	}
+	return o.Stop()
 }
 
 const (
@@ -59,6 +69,9 @@ func bare(space filter.Space, suite *sensor.Suite, o *WholeOptions) (*Plan, floa
 	}
 	if !(o.SpeedMPS > 0) {
 		return nil, 0, fmt.Errorf("the speed is %v m/s: give one above 0", o.SpeedMPS)
+	}
+	if err := checkSpeed(suite, p.Suite, o.SpeedMPS); err != nil {
+		return nil, 0, err
 	}
 	if !(o.StretchM > 0) || !(o.LimitM > 0) {
 		return nil, 0, fmt.Errorf("the stretch is %v m and the limit %v m: both must be above 0", o.StretchM, o.LimitM)
@@ -101,6 +114,9 @@ func Heights(space filter.PlaneSpace, suite *sensor.Suite, points []geo.Point, o
 	c := filter.Columns{}
 	variance := 0.0
 	for i, q := range points {
+		if err := o.stopped(); err != nil {
+			return nil, err
+		}
 		s := &out[i]
 		s.Chart, s.at, s.At = -1, q, space.Frame().Inverse(q)
 		c.Resize(filter.WantHeight, 2, 2*profileSteps)
@@ -129,8 +145,7 @@ func Heights(space filter.PlaneSpace, suite *sensor.Suite, points []geo.Point, o
 			s.RMSM = math.Sqrt((ee + nn) / det)
 		}
 	}
-	mixture(out, 2*variance, o.LimitM, offset, false) // twice: one of the two is driven
-	return out, nil
+	return out, mixture(out, 2*variance, &o, offset, false) // twice: one of the two is driven
 }
 
 // Roads looks at the directed edges of a road map, each with as many metres on from
@@ -159,6 +174,9 @@ func Roads(space filter.LineSpace, suite *sensor.Suite, o WholeOptions) ([]Spot,
 	align, _ := sensor.RoadAlignment(p.qs, alignmentM)
 	out := make([]Spot, len(topology.LengthM))
 	for i := range out {
+		if err := o.stopped(); err != nil {
+			return nil, err
+		}
 		s := &out[i]
 		s.Chart = int32(i)
 		chart, along := s.Chart, 0.0
@@ -200,8 +218,7 @@ func Roads(space filter.LineSpace, suite *sensor.Suite, o WholeOptions) ([]Spot,
 		}
 	}
 	const tenDegrees = 10 * math.Pi / 180
-	mixture(out, tenDegrees*tenDegrees*alignmentM/stepM, o.LimitM, !compass, true)
-	return out, nil
+	return out, mixture(out, tenDegrees*tenDegrees*alignmentM/stepM, &o, !compass, true)
 }
 
 // on is the place on a chart.
@@ -225,7 +242,7 @@ func (p *Plan) straightOn(topology *filter.Lines, chart int32) (next int32, jump
 // mixture fills the ambiguities: exp(-½ Σ d²/v) over the steps of two profiles,
 // summed over the spots that are farther than the limit, over the same with the
 // spot's own 1. With offset their mean difference is free, and taken off.
-func mixture(spots []Spot, variance, limitM float64, offset, angular bool) {
+func mixture(spots []Spot, variance float64, o *WholeOptions, offset, angular bool) error {
 	var wait sync.WaitGroup
 	next := make(chan int)
 	for range runtime.GOMAXPROCS(0) {
@@ -235,7 +252,7 @@ func mixture(spots []Spot, variance, limitM float64, offset, angular bool) {
 				sum := 0.0
 				for j := range spots {
 					b := &spots[j]
-					if b.profile == nil || b.at.Sub(a.at).Norm() <= limitM {
+					if b.profile == nil || b.at.Sub(a.at).Norm() <= o.LimitM {
 						continue
 					}
 					sum += likeness(a.profile, b.profile, variance, offset, angular)
@@ -244,13 +261,18 @@ func mixture(spots []Spot, variance, limitM float64, offset, angular bool) {
 			}
 		})
 	}
+	var stopped error
 	for i := range spots {
+		if stopped = o.stopped(); stopped != nil {
+			break
+		}
 		if spots[i].profile != nil {
 			next <- i
 		}
 	}
 	close(next)
 	wait.Wait()
+	return stopped
 }
 
 func likeness(a, b []float64, variance float64, offset, angular bool) float64 {
