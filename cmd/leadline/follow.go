@@ -14,6 +14,7 @@ import (
 	"time"
 
 	"github.com/spf13/cobra"
+	"google.golang.org/grpc"
 	"google.golang.org/protobuf/encoding/protojson"
 	"google.golang.org/protobuf/proto"
 
@@ -115,6 +116,7 @@ func follow(c *cobra.Command, o *followOptions, vehicles []string) error {
 	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
 	defer stop()
 	w, n := c.OutOrStdout(), 0
+	await(ctx, c.ErrOrStderr(), conn, o.address, vehicles)
 	silence := &silence{errs: c.ErrOrStderr(), at: o.address, now: time.Now}
 	err = client.Follow(ctx, conn, client.Following{
 		Request: req,
@@ -136,6 +138,28 @@ func follow(c *cobra.Command, o *followOptions, vehicles []string) error {
 	return serverError(err, o.address)
 }
 
+// await says which of the vehicles the server does not know yet. What else is wrong,
+// following them tells.
+func await(ctx context.Context, errs io.Writer, conn *grpc.ClientConn, address string, vehicles []string) {
+	if len(vehicles) == 0 {
+		return
+	}
+	ctx, cancel := context.WithTimeout(ctx, patient)
+	defer cancel()
+	resp, err := leadlinev1.NewPositionServiceClient(conn).Where(ctx, &leadlinev1.WhereRequest{Vehicles: vehicles})
+	if err != nil {
+		return
+	}
+	for _, a := range resp.GetAnswers() {
+		switch a.GetFailure().GetReason() {
+		case leadlinev1.Reason_REASON_UNKNOWN_VEHICLE:
+			fmt.Fprintf(errs, "note: no vehicle %q is known at %s yet: waiting for it (control-C ends that)\n", a.GetVehicle(), address)
+		case leadlinev1.Reason_REASON_NO_POSTERIOR:
+			fmt.Fprintf(errs, "note: vehicle %q has no posterior yet: waiting for the first\n", a.GetVehicle())
+		}
+	}
+}
+
 // print prints an update.
 func (o *followOptions) print(w io.Writer, m *leadlinev1.FollowResponse) error {
 	if o.asJSON {
@@ -149,9 +173,9 @@ func (o *followOptions) print(w io.Writer, m *leadlinev1.FollowResponse) error {
 	switch {
 	case m.GetPosterior() != nil:
 		p := m.GetPosterior()
-		text = fmt.Sprintf("is %s at %s (%s): lon %.6f, lat %.6f; 95 %% within %.1f m",
+		text = fmt.Sprintf("is %s at %s (%s): %slon %.6f, lat %.6f; 95 %% within %.1f m",
 			words(p.GetStatus().String(), "STATUS_"), p.GetTime().AsTime().Format(time.RFC3339Nano), age(p.GetAgeS()),
-			p.GetMean().GetLon(), p.GetMean().GetLat(), p.GetRadii().GetRadius95M())
+			warning(p), p.GetMean().GetLon(), p.GetMean().GetLat(), p.GetRadii().GetRadius95M())
 		if p.AreaProbability != nil {
 			text += fmt.Sprintf("; %.4g %% inside", 100*p.GetAreaProbability())
 		}
@@ -169,6 +193,19 @@ func (o *followOptions) print(w io.Writer, m *leadlinev1.FollowResponse) error {
 	}
 	_, err := fmt.Fprintln(w, oneLine(m.GetVehicle()+" "+text+skipped))
 	return err
+}
+
+// warning is what a line says before its figures: the probability of being lost,
+// and the alarms.
+func warning(p *leadlinev1.Posterior) string {
+	var said []string
+	if isLost(p) {
+		said = append(said, fmt.Sprintf("%.1f %% lost, where no figure holds; ", 100*p.GetLost()))
+	}
+	for _, a := range p.GetAlarms() {
+		said = append(said, "alarm: "+alarmText(a)+"; ")
+	}
+	return strings.Join(said, "")
 }
 
 // printLine prints a message of the API as JSON, on a line of its own.

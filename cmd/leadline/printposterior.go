@@ -31,8 +31,9 @@ func printMessage(w io.Writer, m proto.Message) error {
 	return err
 }
 
-// printPosterior prints what a person wants to know of a posterior.
-func printPosterior(w io.Writer, p *leadlinev1.Posterior) {
+// printPosterior prints what a person wants to know of a posterior: first what
+// warns of the figures after it, the lines of first among that.
+func printPosterior(w io.Writer, p *leadlinev1.Posterior, first ...string) {
 	if p == nil {
 		fmt.Fprintln(w, "no posterior")
 		return
@@ -41,6 +42,18 @@ func printPosterior(w io.Writer, p *leadlinev1.Posterior) {
 		fmt.Fprintf(w, "  %-14s %s\n", label, fmt.Sprintf(format, args...))
 	}
 	fmt.Fprintf(w, "%s is %s at %s (%s)\n", p.GetVehicle(), words(p.GetStatus().String(), "STATUS_"), p.GetTime().AsTime().Format(time.RFC3339Nano), age(p.GetAgeS()))
+	for _, text := range first {
+		fmt.Fprintf(w, "  %s\n", text)
+	}
+	if isLost(p) {
+		line("lost", "%.1f %%: no figure below holds then", 100*p.GetLost())
+	}
+	for _, a := range p.GetAlarms() {
+		line("alarm", "%s", alarmText(a))
+	}
+	if p.GetStatus() == leadlinev1.Status_STATUS_CONTRADICTED && len(p.GetAlarms()) == 0 {
+		line("contradicted", "the measurements do not fit the figures below")
+	}
 	r := p.GetRadii()
 	line("mean", "lon %.6f, lat %.6f; 50 %% within %.1f m, 95 %% within %.1f m, 99 %% within %.1f m",
 		p.GetMean().GetLon(), p.GetMean().GetLat(), r.GetRadius50M(), r.GetRadius95M(), r.GetRadius99M())
@@ -51,9 +64,6 @@ func printPosterior(w io.Writer, p *leadlinev1.Posterior) {
 	}
 	if p.GetOffMap() >= 0.01 {
 		line("off the map", "%.1f %%", 100*p.GetOffMap())
-	}
-	if p.GetLost() >= 0.01 || p.GetLostAlarm() {
-		line("lost", "%.1f %%: no figure holds then", 100*p.GetLost())
 	}
 	best := p.GetMostProbable()
 	line("most probable", "lon %.6f, lat %.6f", best.GetPosition().GetLon(), best.GetPosition().GetLat())
@@ -84,13 +94,13 @@ func printPosterior(w io.Writer, p *leadlinev1.Posterior) {
 	}
 	n := p.GetCounts()
 	line("measurements", "%d accepted, %d refused; log evidence %.1f", n.GetAccepted(), n.GetRefused(), p.GetLogEvidence())
-	for _, a := range p.GetAlarms() {
-		line("alarm", "%s", alarmText(a))
-	}
 	if p.GetGapS() > 0 {
 		line("gap", "nothing measured the motion for %.1f s", p.GetGapS())
 	}
 }
+
+// isLost reports whether being lost is to be told of.
+func isLost(p *leadlinev1.Posterior) bool { return p.GetLost() >= 0.01 || p.GetLostAlarm() }
 
 // alarmText words an alarm.
 func alarmText(a *leadlinev1.Alarm) string {

@@ -48,8 +48,21 @@ func TestFeedSlip(t *testing.T) {
 		t.Errorf("at its end:\n%s%s", f.out, f.errs)
 	}
 
+	// The drive has ended now: it is not carried on to the present, which is said first.
+	const ended = "not carried on to the present: its drive has ended"
+	out, errs, status := leadline(t, "where", "van", "--at", srv.address, "--now")
+	if lines := strings.Split(out, "\n"); status != exitDone || errs != "" || len(lines) < 2 || !strings.Contains(lines[1], ended) {
+		t.Errorf("status %d: %s%s", status, out, errs)
+	}
+	if _, errs, status = leadline(t, "where", "van", "--at", srv.address, "--now", "--json"); status != exitDone || !strings.Contains(errs, "note: van: "+ended) {
+		t.Errorf("status %d: %s", status, errs)
+	}
+	if out, _, _ = leadline(t, "where", "van", "--at", srv.address); strings.Contains(out, "carried") {
+		t.Errorf("it was not asked for: %s", out)
+	}
+
 	own := writeText(t, filepath.Join(dir, "own.drive.jsonl"), strings.Replace(head+travel, `"sigma_m":0.1`, `"sigma_m":0`, 1))
-	_, errs, status := leadline(t, "feed", own, "--to", srv.address)
+	_, errs, status = leadline(t, "feed", own, "--to", srv.address)
 	if status != exitBad || !strings.Contains(errs, "1 of 1 measurements were refused, first ") || strings.Contains(errs, "note:") {
 		t.Errorf("status %d: %s", status, errs)
 	}

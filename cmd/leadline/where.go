@@ -35,7 +35,7 @@ func whereCommand() *cobra.Command {
 	f := c.Flags()
 	o.reach.flags(c, "at")
 	f.BoolVar(&o.asJSON, "json", false, "print each answer as JSON, regions as polygons")
-	f.BoolVar(&o.now, "now", false, "carry the belief on to the present, instead of the last measurement")
+	f.BoolVar(&o.now, "now", false, "carry the belief on to the present, instead of the last measurement; not of a drive that has ended")
 	f.DurationVar(&o.ago, "ago", 0, "ask what is known of so long ago, given all since; at most the suite's look_back_s")
 	f.Float64SliceVar(&o.regions, "region", nil, "percentage whose smallest region is wanted, such as 95; repeat for several")
 	f.Float64Var(&o.risk, "risk", 0, "integrity risk of the protection radius (default: the suite's)")
@@ -94,6 +94,9 @@ func where(c *cobra.Command, o *whereOptions, vehicles []string) error {
 				failed = fmt.Errorf("%s (%s)", oneLine(f.GetMessage()), reasonName(f.GetReason()))
 			}
 		}
+		if why := o.notCarried(answer); why != "" && o.asJSON {
+			fmt.Fprintf(c.ErrOrStderr(), "note: %s: %s\n", oneLine(answer.GetVehicle()), why)
+		}
 		switch {
 		case o.asJSON:
 			err = printMessage(c.OutOrStdout(), answer)
@@ -110,10 +113,29 @@ func where(c *cobra.Command, o *whereOptions, vehicles []string) error {
 	return failed
 }
 
+// notCarried says why an answer was not carried on to the present, though that was
+// asked for; "" if it was, or was not asked for.
+func (o *whereOptions) notCarried(answer *leadlinev1.WhereAnswer) string {
+	p := answer.GetPosterior()
+	switch {
+	case !o.now || p == nil || p.GetPredictedS() > 0:
+		return ""
+	case answer.GetEnded():
+		return "not carried on to the present: its drive has ended, and this is of its last measurement"
+	case p.GetAgeS() < 0:
+		return "not carried on to the present: its last measurement is " + age(p.GetAgeS())
+	}
+	return "" // it is of the present
+}
+
 // print prints the answer for one vehicle.
 func (o *whereOptions) print(w io.Writer, answer *leadlinev1.WhereAnswer) {
 	p := answer.GetPosterior()
-	printPosterior(w, p)
+	var first []string
+	if why := o.notCarried(answer); why != "" {
+		first = []string{why}
+	}
+	printPosterior(w, p, first...)
 	if s := p.GetPredictedS(); s > 0 {
 		fmt.Fprintf(w, "  %-14s %.1f s beyond the last measurement, by how the vehicle may move\n", "carried on", s)
 	}
