@@ -1,6 +1,7 @@
 package main
 
 import (
+	"context"
 	"fmt"
 	"io"
 	"runtime"
@@ -72,17 +73,17 @@ func (o *replayOptions) tries(f *diagnose.Findings) bool {
 }
 
 // study tries usual mistakes if a replay is suspect, and explains the time that
-// was asked for.
-func (o *replayOptions) study(errs io.Writer, out *studies, m *mapFile, r *sweep.Kept, path string) (err error) {
+// was asked for. Once it is interrupted it ends at once, with what it has.
+func (o *replayOptions) study(ctx context.Context, errs io.Writer, out *studies, m *mapFile, r *sweep.Kept, path string) (err error) {
 	if o.tries(out.Findings) {
 		show, end := progress(errs, driveName(path)+", usual mistakes")
-		how := diagnose.Options{Grids: m.grids(), Each: eachAtOnce, Progress: show}
+		how := diagnose.Options{Grids: m.grids(), Each: eachAtOnce, Progress: show, Stop: ctx.Err}
 		if o.diagnose == diagnoseAuto {
 			how.Beside = r.Record
 		}
 		out.Diagnosis, err = diagnose.Run(r.Drive, r.Config, how)
 		end()
-		if err != nil {
+		if err != nil && ctx.Err() == nil {
 			return fmt.Errorf("%s: trying usual mistakes: %w", path, err)
 		}
 	}
@@ -91,7 +92,8 @@ func (o *replayOptions) study(errs io.Writer, out *studies, m *mapFile, r *sweep
 		if err != nil {
 			return err
 		}
-		if out.Explanation, err = diagnose.Explain(r.Drive, r.Config, at, o.explainWithin.Seconds()); err != nil {
+		out.Explanation, err = diagnose.Explain(r.Drive, r.Config, at, o.explainWithin.Seconds(), ctx.Err)
+		if err != nil && ctx.Err() == nil {
 			return fmt.Errorf("%s: --explain %s: %w", path, o.explain, err)
 		}
 	}

@@ -128,15 +128,19 @@ func printLookedBack(line func(label, format string, args ...any), l *score.Look
 // printSweep prints what the runs of a sweep come to.
 func printSweep(w io.Writer, s *sweep.Summary) error {
 	var b strings.Builder
-	row := func(name string, p *sweep.Pooled) {
-		fmt.Fprintf(&b, "  %-40s %6d %12.1f %8s %8s %8s %9s %6d %6d\n", name, p.Drives, p.LogEvidence,
-			figure(p.RMSEM, 1), figure(p.P95M, 1), figure(p.CRPSM, 1), figure(p.Coverage95, 100), p.Beyond, p.NeverLocated)
+	row := func(name, end string, p *sweep.Pooled) {
+		fmt.Fprintf(&b, "  %-40s %6d %12.1f %8s %8s %8s %9s %6d %6d%s\n", name, p.Drives, p.LogEvidence,
+			figure(p.RMSEM, 1), figure(p.P95M, 1), figure(p.CRPSM, 1), figure(p.Coverage95, 100), p.Beyond, p.NeverLocated, end)
 	}
 	table := func(title string, of func(*sweep.Row) *sweep.Pooled) {
 		fmt.Fprintf(&b, "%s\n  %-40s %6s %12s %8s %8s %8s %9s %6s %6s\n", title, "setting", "drives", "evidence", "rmse m", "p95 m", "CRPS m", "in 95 %", "beyond", "never")
 		for i := range s.Rows {
+			end := ""
+			if n := s.Rows[i].CutShort; n > 0 {
+				end = fmt.Sprintf("  partial: %d cut short", n)
+			}
 			if p := of(&s.Rows[i]); p != nil {
-				row(s.Rows[i].Setting, p)
+				row(s.Rows[i].Setting, end, p)
 			}
 		}
 	}
@@ -148,7 +152,7 @@ func printSweep(w io.Writer, s *sweep.Summary) error {
 	if len(s.HeldOut) > 0 {
 		table("held out: "+strings.Join(s.HeldOut, ", "), func(r *sweep.Row) *sweep.Pooled { return r.HeldOut })
 	}
-	fmt.Fprintf(&b, "%d settings tried so far, %d runs here, %d of them from an earlier job, %d failed\n", s.SettingsTried, s.Runs, s.Resumed, s.Failed)
+	fmt.Fprintf(&b, "%d settings tried so far, %d runs here, %d of them from an earlier job, %d cut short, %d failed\n", s.SettingsTried, s.Runs, s.Resumed, s.CutShort, s.Failed)
 	if s.Best != "" {
 		fmt.Fprintf(&b, "most evidence: %s. The best of %d settings looks better than it is", s.Best, s.SettingsTried)
 		if len(s.HeldOut) > 0 {

@@ -141,11 +141,15 @@ func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
 		err = printSweep(c.OutOrStdout(), sum)
 	}
 	if ctx.Err() != nil {
+		whole, all := sum.Runs-sum.CutShort, max(1, len(job.Settings))*len(paths)
 		kept := "nothing was kept: give --out"
 		if o.dir != "" {
 			kept = fmt.Sprintf("what is done is in %s, and the same command goes on from there", o.dir)
 		}
-		failed = append(failed, failure{fmt.Errorf("interrupted after %d of %d runs: %s", sum.Runs-sum.CutShort, max(1, len(job.Settings))*len(paths), kept)})
+		if whole == all {
+			kept = "all scores are above; what was to be tried or explained after them is not"
+		}
+		failed = append(failed, failure{fmt.Errorf("interrupted after %d of %d runs: %s", whole, all, kept)})
 	}
 	if err == nil && len(failed) > 0 {
 		if err = failed[0]; len(failed) > 1 {
@@ -281,7 +285,7 @@ func (o *replayOptions) say(ctx context.Context, c *cobra.Command, m *mapFile, r
 		}
 	}
 	if run.Kept != nil {
-		if err := o.study(c.ErrOrStderr(), why, m, run.Kept, run.Drive.Path); err != nil {
+		if err := o.study(ctx, c.ErrOrStderr(), why, m, run.Kept, run.Drive.Path); err != nil {
 			return err
 		}
 	}

@@ -31,6 +31,9 @@ type Options struct {
 	// Each runs f for 0 to n-1, at once if it likes; nil: one after the other.
 	// No result depends on it.
 	Each func(n int, f func(i int))
+	// Stop, if set, is asked before each measurement, by many at once; its error ends
+	// the diagnosis and comes back from Run.
+	Stop func() error
 	// Beside is the record of the drive's replay where the diagnosis is made
 	// unasked: it then takes at most sixty times as long (budget.go), and no
 	// more than a minute of one core in any case, and as long again for the
@@ -104,7 +107,11 @@ func Run(d *drivefile.Drive, c session.Config, o Options) (*Report, error) {
 		return nil, err
 	}
 	r := &Report{}
-	if err := k.tryAll(r, o); err != nil {
+	err = k.tryAll(r, o)
+	if stopped := k.stop(); stopped != nil {
+		return nil, stopped
+	}
+	if err != nil {
 		return nil, err
 	}
 	end := k.rounds[len(k.rounds)-1]
@@ -146,6 +153,9 @@ func newCourse(d *drivefile.Drive, c session.Config, o Options) (*course, error)
 		if since, ok := sensor.Since(ev.Measurement); ok {
 			k.start = min(k.start, since)
 		}
+	}
+	if k.stop = o.Stop; k.stop == nil {
+		k.stop = func() error { return nil }
 	}
 	if k.each == nil {
 		k.each = func(n int, f func(int)) {

@@ -1,6 +1,7 @@
 package diagnose
 
 import (
+	"errors"
 	"fmt"
 	"math"
 	"reflect"
@@ -210,6 +211,40 @@ func TestSameInAnyOrder(t *testing.T) {
 	}
 }
 
+// TestStopped stops a diagnosis at many places of its way: its error comes back, and
+// nothing more is taken but what was begun.
+func TestStopped(t *testing.T) {
+	asked, most := 0, math.MaxInt
+	stop := errors.New("stopped")
+	s := flyer(t, 1)
+	run := func() error {
+		asked = 0
+		_, err := Run(s.drive, s.config, Options{MaxCells: 300, OpeningS: 20, Stop: func() error {
+			if asked++; asked > most {
+				return stop
+			}
+			return nil
+		}})
+		return err
+	}
+	if err := run(); err != nil {
+		t.Fatal(err)
+	}
+	all := asked
+	for i := range 6 {
+		most = all * i / 6
+		if err := run(); !errors.Is(err, stop) {
+			t.Fatalf("after %d of %d: %v", most, all, err)
+		}
+		if asked > most+all/10 {
+			t.Errorf("after %d of %d: asked %d times more", most, all, asked-most)
+		}
+	}
+	if _, err := Explain(s.drive, s.config, s.drive.Time+5e9, 1, func() error { return stop }); !errors.Is(err, stop) {
+		t.Errorf("an explanation: %v", err)
+	}
+}
+
 // TestNoMeasurements: a drive without any is an error.
 func TestNoMeasurements(t *testing.T) {
 	s := flyer(t, 1)
@@ -217,7 +252,7 @@ func TestNoMeasurements(t *testing.T) {
 	if _, err := Run(s.drive, s.config, Options{}); err == nil {
 		t.Error("a drive without measurements is diagnosed")
 	}
-	if _, err := Explain(s.drive, s.config, 0, 1); err == nil {
+	if _, err := Explain(s.drive, s.config, 0, 1, nil); err == nil {
 		t.Error("a drive without measurements is explained")
 	}
 }

@@ -62,9 +62,10 @@ const (
 )
 
 // Explain replays a drive up to a time and says what moved the belief within
-// a number of seconds of it. An error is about the configuration, the drive as
-// a whole, or a time at which the drive has nothing.
-func Explain(d *drivefile.Drive, c session.Config, at sensor.Time, withinS float64) (*Explanation, error) {
+// a number of seconds of it. stop, if not nil, is asked before each measurement, and its
+// error ends it. Other errors are about the configuration, the drive as a whole, or a
+// time at which the drive has nothing.
+func Explain(d *drivefile.Drive, c session.Config, at sensor.Time, withinS float64, stop func() error) (*Explanation, error) {
 	events := replay.Ordered(d.Events)
 	if len(events) == 0 {
 		return nil, ErrNoMeasurements
@@ -89,6 +90,11 @@ func Explain(d *drivefile.Drive, c session.Config, at sensor.Time, withinS float
 	for _, ev := range events {
 		if since, ok := sensor.Since(ev.Measurement); ev.Time > end && !(ok && since < w.to) {
 			continue
+		}
+		if stop != nil {
+			if err := stop(); err != nil {
+				return nil, err
+			}
 		}
 		if _, err := s.Add(ev); err != nil {
 			var ref *session.Refusal

@@ -20,7 +20,7 @@ func TestExplain(t *testing.T) {
 	s := fittedCar(t, 2)
 	start := s.drive.Time
 	at := start + 30e9
-	x, err := Explain(s.drive, s.config, at, 2.5)
+	x, err := Explain(s.drive, s.config, at, 2.5, nil)
 	must(t, x, err)
 	res, err := replay.Run(s.drive, s.config, replay.Options{})
 	must(t, res, err)
@@ -95,7 +95,7 @@ func TestExplainOutlier(t *testing.T) {
 			ev.Measurement = m
 		}
 	}
-	x, err := Explain(s.drive, s.config, at, 0.5)
+	x, err := Explain(s.drive, s.config, at, 0.5, nil)
 	must(t, x, err)
 	i := slices.IndexFunc(x.Effects, func(e Effect) bool { return e.Kind == "fix" })
 	if i < 0 {
@@ -138,7 +138,7 @@ func TestExplainTheLate(t *testing.T) {
 	if err != nil || again == 0 {
 		t.Fatalf("nothing was computed again, %v", err)
 	}
-	x, err := Explain(s.drive, s.config, s.drive.Time+30e9, 2)
+	x, err := Explain(s.drive, s.config, s.drive.Time+30e9, 2, nil)
 	must(t, x, err)
 	fixes := map[float64]int{}
 	for i := range x.Effects {
@@ -162,7 +162,7 @@ func TestExplainTheLate(t *testing.T) {
 // TestExplainNothing: where a drive has nothing, that is an error.
 func TestExplainNothing(t *testing.T) {
 	s := flyer(t, 1)
-	_, err := Explain(s.drive, s.config, s.drive.Time+1e13, 2)
+	_, err := Explain(s.drive, s.config, s.drive.Time+1e13, 2, nil)
 	if err == nil || !strings.Contains(err.Error(), "nothing moved") {
 		t.Errorf("explained: %v", err)
 	}

@@ -198,7 +198,7 @@ func TestUnitsKeepEvidence(t *testing.T) {
 	whole := func(events []sensor.Event, m *Mistake) float64 {
 		r, err := newRun(c.config, c.suite, events, m)
 		must(t, r, err)
-		if err := r.advance(0, true, math.Inf(1)); err != nil {
+		if err := r.advance(0, true, math.Inf(1), c.stop); err != nil {
 			t.Fatal(err)
 		}
 		return r.nats()
@@ -269,7 +269,7 @@ func TestDensityOfTheLog(t *testing.T) {
 			events[at].Measurement = ev
 			r, err := newRun(c.config, c.suite, events, &m)
 			must(t, r, err)
-			if err := r.advance(0, true, math.Inf(1)); err != nil {
+			if err := r.advance(0, true, math.Inf(1), c.stop); err != nil {
 				t.Fatal(err)
 			}
 			sum += math.Exp(r.nats()) * stepM * math.Abs(k.scale)

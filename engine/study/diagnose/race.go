@@ -20,6 +20,7 @@ type course struct {
 	start  sensor.Time
 	rounds []sensor.Time // ascending; the last is the end
 	each   func(n int, f func(i int))
+	stop   func() error // before each measurement
 	budget budget
 	// whole are the rounds of the whole opening where, for want of budget, all but
 	// the finalists end before it does; else nil.
@@ -115,7 +116,7 @@ func (c *course) advance(e *entrant, round int) {
 	if !e.isLog() || c.cutShort() && !c.mayCut { // what it was compared with before stands
 		most = c.budget.most / costlyShare
 	}
-	if e.err = e.run.advance(c.rounds[round], round == len(c.rounds)-1, most); e.err != nil {
+	if e.err = e.run.advance(c.rounds[round], round == len(c.rounds)-1, most, c.stop); e.err != nil {
 		return
 	}
 	e.nats = append(e.nats, e.run.nats())

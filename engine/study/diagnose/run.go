@@ -65,11 +65,14 @@ func (r *run) at(ev sensor.Event) sensor.Time {
 }
 
 // advance runs up to a time, what is there then included, or to the end, or
-// until it has taken more work than most.
-func (r *run) advance(until sensor.Time, end bool, most float64) error {
+// until it has taken more work than most, or stop gives an error.
+func (r *run) advance(until sensor.Time, end bool, most float64, stop func() error) error {
 	for ; r.next < len(r.events) && (end || r.at(r.events[r.next]) <= until); r.next++ {
 		if r.log.work > most {
 			return errCostly
+		}
+		if err := stop(); err != nil {
+			return err
 		}
 		ev := r.events[r.next]
 		ps, err := r.s.Add(ev)

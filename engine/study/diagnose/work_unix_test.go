@@ -19,7 +19,7 @@ func BenchmarkWork(b *testing.B) {
 			for b.Loop() {
 				r, err := newRun(c.config, c.suite, c.events, &Mistake{})
 				must(b, r, err)
-				if err := r.advance(0, true, math.Inf(1)); err != nil {
+				if err := r.advance(0, true, math.Inf(1), c.stop); err != nil {
 					b.Fatal(err)
 				}
 				work += r.log.work

@@ -1,6 +1,8 @@
 package sweep
 
 import (
+	"context"
+	"errors"
 	"math"
 	"path/filepath"
 
@@ -30,10 +32,11 @@ type Summary struct {
 
 // Row is one setting.
 type Row struct {
-	Setting string   `json:"setting"`
-	Set     []string `json:"set"`
-	Figures Pooled   `json:"drives"`
-	HeldOut *Pooled  `json:"held_out,omitempty"`
+	Setting  string   `json:"setting"`
+	Set      []string `json:"set"`
+	CutShort int      `json:"cut_short"` // of its runs: its figures are of less
+	Figures  Pooled   `json:"drives"`
+	HeldOut  *Pooled  `json:"held_out,omitempty"`
 }
 
 // Pooled sums up the scores of several drives; figures of errors are of those that
@@ -60,11 +63,14 @@ func (s *Summary) add(o *Outcome) {
 	if o.Resumed {
 		s.Resumed++
 	}
-	if o.Score == nil {
+	switch {
+	case o.Score == nil && errors.Is(o.Err, context.Canceled):
+		s.CutShort++
+		return
+	case o.Score == nil:
 		s.Failed++
 		return
-	}
-	if o.Score.Partial {
+	case o.Score.Partial:
 		s.CutShort++
 	}
 	if n := len(s.Rows); n == 0 || s.Rows[n-1].Setting != o.Setting.Name {
@@ -75,6 +81,9 @@ func (s *Summary) add(o *Outcome) {
 		s.Rows = append(s.Rows, row)
 	}
 	row := &s.Rows[len(s.Rows)-1]
+	if o.Score.Partial {
+		row.CutShort++
+	}
 	p := &row.Figures
 	if o.HeldOut {
 		if row.HeldOut == nil {
@@ -131,7 +140,7 @@ func (s *Summary) end(j *Job) error {
 	}
 	compared := 0
 	for _, r := range s.Rows {
-		if r.Figures.Drives < drives { // cut short: its evidence is of less
+		if r.CutShort > 0 || r.Figures.Drives < drives { // its evidence is of less
 			continue
 		}
 		if compared++; r.Figures.LogEvidence > most {
@@ -142,7 +151,7 @@ func (s *Summary) end(j *Job) error {
 		s.Best = ""
 	}
 	s.SettingsTried = len(s.Rows)
-	if j.Dir == "" || s.Runs == s.Failed {
+	if j.Dir == "" || len(s.Rows) == 0 {
 		return nil
 	}
 	names, err := results.Settings(j.Dir)

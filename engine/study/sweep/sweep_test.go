@@ -201,6 +201,20 @@ func TestPartial(t *testing.T) {
 	if out, _ := outcomes(t, job(dir, d)); out[0].Resumed {
 		t.Error("a partial run was taken for whole")
 	}
+
+	// Of three settings one is cut short, which has the most evidence so far: it is
+	// marked, and not the best.
+	sum := newSummary()
+	for i, evidence := range []float64{90, 100, 80} {
+		sum.add(&Outcome{Drive: &d, Setting: &Setting{Name: fmt.Sprint("s", i)}, Score: &score.Score{LogEvidence: evidence, Partial: i == 1}})
+	}
+	sum.add(&Outcome{Drive: &d, Setting: &Setting{Name: "s3"}, Err: fmt.Errorf("boat: %w", context.Canceled)})
+	if err := sum.end(&Job{}); err != nil {
+		t.Fatal(err)
+	}
+	if sum.Best != "s0" || sum.Rows[0].CutShort != 0 || sum.Rows[1].CutShort != 1 || sum.CutShort != 2 || sum.Failed != 0 {
+		t.Errorf("%+v", sum)
+	}
 }
 
 // TestGoesOnPastABadDrive: a drive that cannot be run is an outcome with an error,
