@@ -81,6 +81,20 @@ func TestAhead(t *testing.T) {
 		t.Errorf("the page lists %d weak stretches, the server %d", rows, len(want.GetWeak()))
 	}
 	p.click("document.querySelector('#weak button')")
+
+	// Distances and speeds in nautical units, by mouse, and in metric ones again, by keyboard.
+	const units = "document.querySelector('header select')"
+	p.chooseByMouse(units, "nautical")
+	p.says("#ahead-answer", "NM")
+	if _, err := fmt.Sscanf(strings.ReplaceAll(p.text("#ahead-answer"), "\u00a0", " "), "%f NM", &long); err != nil || math.Abs(long-want.GetLengthM()/1852) > 0.006*long {
+		t.Errorf("the page says %q, the server has %v m: %v", p.text("#ahead-answer"), want.GetLengthM(), err)
+	}
+	knots := eval[float64](p, "document.querySelector('[name=speed]').valueAsNumber")
+	p.chooseByKeys(units, "metric")
+	p.await("metric units", "document.querySelector('#ahead-answer').innerText.includes('\u00a0m in')")
+	if kmh := eval[float64](p, "document.querySelector('[name=speed]').valueAsNumber"); math.Abs(knots*1.852-kmh) > 0.006*kmh || math.Abs(kmh-36) > 0.2 {
+		t.Errorf("a speed of %v kn and of %v km/h, the server was asked for 36 km/h", knots, kmh)
+	}
 	p.audit("ahead")
 	p.looks("ahead")
 

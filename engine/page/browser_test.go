@@ -216,6 +216,7 @@ func (b *browser) open(t *testing.T, url string, width, height int, dark bool, b
 	for _, domain := range []string{"Runtime", "Log", "Network", "Page"} {
 		p.do(domain+".enable", nil, nil)
 	}
+	p.do("Performance.enable", map[string]any{"timeDomain": "threadTicks"}, nil) // counts from here on
 	scheme := "light"
 	if dark {
 		scheme = "dark"

@@ -134,6 +134,9 @@ func TestChances(t *testing.T) {
 	p.write("Ada")
 	byMouse(button("Enter the sighting"))
 	p.says("#sighting-answer", "Entered. The 95 % radius was")
+	if got := r.recent("van", saidBy("Ada")).GetMeasurement().GetMeasurement().GetSighting(); len(got.GetArea().GetRings()) != 1 || math.Abs(got.GetMistaken()-0.1) > 1e-9 {
+		t.Errorf("the server has %v", got)
+	}
 	after := r.where(ask, int(at.GetCounts().GetAccepted())+1)
 	var was, is float64
 	if _, err := fmt.Sscanf(strings.ReplaceAll(p.text("#sighting-answer"), "\u00a0", " "), "Entered. The 95 %% radius was %f m and is %f m.", &was, &is); err != nil || math.Abs(was-at.GetRadii().GetRadius95M()) > 0.6 || math.Abs(is-after.GetRadii().GetRadius95M()) > 0.6 {
@@ -187,6 +190,38 @@ func TestChances(t *testing.T) {
 	p.tabTo("document.querySelector('header select')")
 	p.press("ArrowDown")
 	p.says("main .side", "kn ±")
+	p.chooseByMouse("document.querySelector('header select')", "metric")
+	p.says("main .side", "km/h ±")
+	p.chooseByMouse("document.querySelector('header select')", "nautical")
+	p.says("main .side", "kn ±")
+	now := r.where(ask, 0)
+	var knots float64
+	if _, err := fmt.Sscanf(strings.ReplaceAll(eval[string](p, "[...document.querySelectorAll('.pairs dt')].find(e => e.innerText === 'Speed').nextElementSibling.innerText"), "\u00a0", " "), "%f kn", &knots); err != nil || math.Abs(knots-now.GetSpeed().GetMps()*3600/1852) > 0.005*knots+0.001 {
+		t.Errorf("the page says %v kn, the server has %v: %v", knots, now.GetSpeed(), err)
+	}
+
+	// A way that ends before it begins, and what comes much too late, are refused, which is shown
+	// as the server says it.
+	unusable := last
+	unusable.Time -= 4e9
+	late := sensor.Event{Time: w.van.Time - 3600e9, Sensor: "gnss", Number: 2, Measurement: sensor.Fix{Position: m, SigmaM: 5}}
+	r.send(f, append([]sensor.Event{unusable, late}, upTo(w.van, 5.6)[len(upTo(w.van, 5.4)):]...)) // news comes with a posterior
+	var whys []string
+	for _, ev := range []sensor.Event{unusable, late} {
+		at := wire.FromEvent(ev).GetTime().AsTime()
+		m := r.recent("van", func(m *leadlinev1.RecentMeasurement) bool {
+			return m.GetRefusal() != nil && m.GetMeasurement().GetTime().AsTime().Equal(at) && m.GetMeasurement().GetSensor() == ev.Sensor
+		})
+		whys = append(whys, m.GetRefusal().GetDetail())
+	}
+	t.Logf("refused: %q", whys)
+	for _, why := range whys {
+		p.await("why it is refused", fmt.Sprintf("[...document.querySelectorAll('.last tr.refused strong')].some(e => e.textContent.trim() === 'Refused: ' + %q)", why))
+	}
+	if refused := r.where(ask, 0).GetCounts().GetRefused(); refused != 2 {
+		t.Errorf("the server has refused %d", refused)
+	}
+	p.says("main .side .pairs", " taken, 2 refused")
 	p.audit("now, with a fix, in nautical units")
 	p.shoot("now-fix-light")
 	p.clean(r.origin)

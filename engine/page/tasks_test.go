@@ -104,6 +104,9 @@ func TestTasks(t *testing.T) {
 	p.write("Ada")
 	p.press("Enter")
 	p.says("#sighting-answer", "Entered.")
+	if got := r.recent("van", saidBy("Ada")).GetMeasurement().GetMeasurement().GetSighting(); got.GetRoad() != "Dune Lane" || got.GetMistaken() != 0 {
+		t.Errorf("the server has %v", got)
+	}
 	if got := r.where(ask, accepted+1); got.GetStatus() != leadlinev1.Status_STATUS_CONTRADICTED || len(got.GetAlarms()) == 0 {
 		t.Errorf("after it the server has %v, %v", got.GetStatus(), got.GetAlarms())
 	}
@@ -143,6 +146,22 @@ func TestTasks(t *testing.T) {
 	p.says(".cards", "strongly connected")
 	p.audit("maps, dark")
 	p.looks("server")
+
+	// A suite's text, by mouse, and another's by keyboard.
+	for i, name := range []string{"survey-craft", "truck"} {
+		suite, err := r.calls.DescribeSuite(t.Context(), &leadlinev1.DescribeSuiteRequest{Suite: name})
+		if err != nil {
+			t.Fatal(err)
+		}
+		heading := fmt.Sprintf("[...document.querySelectorAll('summary')].find(e => e.innerText === %q)", name)
+		if i == 0 {
+			p.click(heading)
+		} else {
+			p.tabTo(heading)
+			p.press("Enter")
+		}
+		p.await("the suite's text", fmt.Sprintf("document.querySelector('[aria-label=\"Suite %s\"]').checkVisibility() && document.querySelector('[aria-label=\"Suite %[1]s\"]').textContent === %q", name, suite.GetYaml()))
+	}
 	p.click("document.querySelector('nav a[href^=\"#now\"]')")
 	p.says("main .side", "Last measurements")
 	p.audit("now, dark")

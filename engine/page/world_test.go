@@ -234,6 +234,38 @@ func (r *running) where(req *leadlinev1.WhereRequest, accepted int) *leadlinev1.
 	}
 }
 
+// recent waits until one of a vehicle's last measurements, as the server has them, is as it is
+// wanted.
+func (r *running) recent(vehicle string, wanted func(*leadlinev1.RecentMeasurement) bool) *leadlinev1.RecentMeasurement {
+	r.t.Helper()
+	ctx, cancel := context.WithTimeout(r.t.Context(), patience)
+	defer cancel()
+	st, err := r.calls.Follow(ctx, &leadlinev1.FollowRequest{Vehicles: []string{vehicle}, Detail: leadlinev1.Detail_DETAIL_BELIEF})
+	if err != nil {
+		r.t.Fatal(err)
+	}
+	var last []*leadlinev1.RecentMeasurement
+	for {
+		m, err := st.Recv()
+		if err != nil {
+			r.t.Fatalf("%s has no such measurement: %v, %v", vehicle, err, last)
+		}
+		last = m.GetRecent()
+		for _, got := range m.GetRecent() {
+			if wanted(got) {
+				return got
+			}
+		}
+	}
+}
+
+// saidBy is whether a measurement is a sighting of somebody.
+func saidBy(who string) func(*leadlinev1.RecentMeasurement) bool {
+	return func(m *leadlinev1.RecentMeasurement) bool {
+		return m.GetMeasurement().GetMeasurement().GetSighting().GetWho() == who
+	}
+}
+
 // nearStart is a start that is known to some metres.
 func nearStart(d *drivefile.Drive) *wire.Start {
 	return &wire.Start{Point: d.Truths[0].Position, SigmaM: 15}
