@@ -59,6 +59,10 @@ func openDrive(path string) (*os.File, *bufio.Reader, error) {
 	if err != nil {
 		return nil, nil, err
 	}
+	if info, err := f.Stat(); err == nil && info.IsDir() {
+		f.Close()
+		return nil, nil, fmt.Errorf("%s is a folder: give a drive file, such as %s", path, filepath.Join(path, "NAME"+drivefile.Suffix))
+	}
 	b := bufio.NewReader(f)
 	if err := startsAsDrive(b, path); err != nil {
 		f.Close()

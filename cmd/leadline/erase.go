@@ -28,6 +28,9 @@ is kept as any other.`,
 			if !yes {
 				return fmt.Errorf("erasing vehicle %q cannot be undone: say --yes if that is what you want", args[0])
 			}
+			if err := checkTimeout(wait); err != nil {
+				return err
+			}
 			return askingFor(wait, &to, func(ctx context.Context, s leadlinev1.PositionServiceClient) error {
 				r, err := s.EraseVehicle(ctx, &leadlinev1.EraseVehicleRequest{Vehicle: args[0]})
 				if err != nil {

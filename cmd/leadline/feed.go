@@ -256,6 +256,8 @@ func serverError(err error, address string) error {
 	switch st.Code() {
 	case codes.Unavailable:
 		return fmt.Errorf("no answer from the server at %s (%s): is it running there?", address, oneLine(st.Message()))
+	case codes.DeadlineExceeded:
+		return fmt.Errorf("no answer from the server at %s in time (%s): is it running there, or very busy?", address, oneLine(st.Message()))
 	case codes.Unimplemented:
 		return fmt.Errorf("the server at %s does not do that (%s): is it a Leadline server of this version?", address, oneLine(st.Message()))
 	}

@@ -63,7 +63,7 @@ func (o *outboxOptions) openKept(errs io.Writer, conn grpc.ClientConnInterface, 
 		},
 	})
 	if err != nil {
-		return nil, err
+		return nil, o.keepError(err, d.Header == nil)
 	}
 	if n := s.Waiting(); n > 0 {
 		fmt.Fprintf(errs, "%s holds %d measurements of drive %s that are sent first\n", o.keep, n, s.Name())

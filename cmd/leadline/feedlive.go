@@ -98,6 +98,9 @@ func (o *feedOptions) live(c *cobra.Command, from string) error {
 		Header: wire.FromHeader(header), Name: o.drive, Replace: o.replace, Continue: true, Reply: leadlinev1.Reply_REPLY_NONE,
 		OnRefusal: refused.add,
 	})
+	if err != nil && o.keep != "" { // it is of the file: nobody was called yet
+		return err
+	}
 	if err != nil {
 		return fmt.Errorf("%s: %w", from, serverError(err, o.address))
 	}

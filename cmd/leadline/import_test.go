@@ -403,7 +403,7 @@ func TestImportBadInput(t *testing.T) {
 		"start":             {[]string{nmea, "-o", out, "--vehicle", "v", "--start", "here"}, []string{"--start here", "LON,LAT,SIGMA"}},
 		"start's latitude":  {[]string{nmea, "-o", out, "--vehicle", "v", "--start", "10,95,3"}, []string{"--start", "95", "swapped"}},
 		"start's sigma":     {[]string{nmea, "-o", out, "--vehicle", "v", "--start", "10,50,0"}, []string{"--start", "standard deviation"}},
-		"a folder":          {[]string{dir, "-o", out, "--vehicle", "v"}, []string{"directory"}},
+		"a folder":          {[]string{dir, "-o", out, "--vehicle", "v"}, []string{"is a folder"}},
 		"a table untold":    {[]string{csv, "-o", out, "--vehicle", "v"}, []string{"good.csv", "--columns"}},
 		"table and NMEA":    {[]string{csv, "-o", out, "--vehicle", "v", "--columns", columns, "--reckon"}, []string{"--columns", "--reckon", "one of them"}},
 		"no column file":    {[]string{csv, "-o", out, "--vehicle", "v", "--columns", filepath.Join(dir, "none.yaml")}, []string{"--columns", "none.yaml", "check the path"}},

@@ -129,5 +129,5 @@ func needSuffix(path, suffix string) error {
 	if info, err := os.Stat(filepath.Dir(path)); err != nil || !info.IsDir() {
 		return fmt.Errorf("-o %s: there is no folder %s: make it first", path, filepath.Dir(path))
 	}
-	return nil
+	return writable("-o", path, filepath.Dir(path), "."+filepath.Base(path)+".")
 }

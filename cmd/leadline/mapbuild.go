@@ -178,12 +178,14 @@ func mapHeightsCommand() *cobra.Command {
 
 // exists gives a missing input a line of its own.
 func exists(path string) error {
-	if _, err := os.Stat(path); os.IsNotExist(err) {
+	info, err := os.Stat(path)
+	switch {
+	case os.IsNotExist(err):
 		return fmt.Errorf("there is no file %s: check the path", path)
-	} else if err != nil {
-		return err
+	case err == nil && info.IsDir():
+		return fmt.Errorf("%s is a folder: give a file", path)
 	}
-	return nil
+	return err
 }
 
 // must panics on an error that only a mistake in this program can cause.

@@ -150,7 +150,10 @@ func (o *serveOptions) config() (cfg *server.Config, closeMaps func(), err error
 			return cfg, closeMaps, err
 		}
 	}
-	return cfg, closeMaps, cfg.Validate()
+	if err := cfg.Validate(); err != nil {
+		return cfg, closeMaps, err
+	}
+	return cfg, closeMaps, o.folders()
 }
 
 // named splits NAME=FILE; a file alone has a name of its own.

@@ -18,6 +18,9 @@ var (
 // flagError words what is wrong with a flag.
 func flagError(c *cobra.Command, err error) error {
 	text := err.Error()
+	if args := c.Flags().Args(); c.HasSubCommands() && len(args) > 0 { // what comes before it is no command
+		return fmt.Errorf("unknown command %q for %q; see `%s --help`", args[0], c.CommandPath(), c.CommandPath())
+	}
 	if m := wrongValue.FindStringSubmatch(text); m != nil {
 		why := m[3]
 		if f := c.Flag(strings.TrimPrefix(m[2], "--")); f != nil && kinds[f.Value.Type()] != "" {

@@ -2,6 +2,7 @@ package main
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"io"
 	"strings"
@@ -44,6 +45,14 @@ func whereCommand() *cobra.Command {
 	return c
 }
 
+// checkTimeout wants a time to wait.
+func checkTimeout(wait time.Duration) error {
+	if wait <= 0 {
+		return fmt.Errorf("--timeout is %v: give how long to wait, such as 10s", wait)
+	}
+	return nil
+}
+
 // checkRegion wants a percentage; below 1 a fraction was meant.
 func checkRegion(percent float64) error {
 	switch {
@@ -58,6 +67,9 @@ func checkRegion(percent float64) error {
 func where(c *cobra.Command, o *whereOptions, vehicles []string) error {
 	if o.ago < 0 || c.Flags().Changed("ago") && o.ago == 0 {
 		return fmt.Errorf("--ago is %v: give how long ago, such as 10s", o.ago)
+	}
+	if err := checkTimeout(o.timeout); err != nil {
+		return err
 	}
 	req := &leadlinev1.WhereRequest{Vehicles: vehicles, PredictToNow: o.now, AgoS: o.ago.Seconds()}
 	for _, percent := range o.regions {
@@ -83,6 +95,9 @@ func where(c *cobra.Command, o *whereOptions, vehicles []string) error {
 	ctx, cancel := context.WithTimeout(context.Background(), o.timeout)
 	defer cancel()
 	resp, err := leadlinev1.NewPositionServiceClient(conn).Where(ctx, req)
+	if errors.Is(ctx.Err(), context.DeadlineExceeded) && err != nil {
+		return fmt.Errorf("no answer from the server at %s within %v: give a longer --timeout, or see whether it runs there", o.address, o.timeout)
+	}
 	if err != nil {
 		return serverError(err, o.address)
 	}

@@ -3,9 +3,11 @@ package roadfile
 import (
 	"encoding/binary"
 	"encoding/json"
+	"errors"
 	"fmt"
 	"hash/crc32"
 	"io"
+	"io/fs"
 	"os"
 	"path/filepath"
 	"strconv"
@@ -44,7 +46,11 @@ var castagnoli = crc32.MakeTable(crc32.Castagnoli)
 func Write(path string, m *network.Map) (err error) {
 	f, err := os.CreateTemp(filepath.Dir(path), "."+filepath.Base(path)+".*")
 	if err != nil {
-		return fmt.Errorf("writing the road map: %w", err)
+		var system *fs.PathError
+		if errors.As(err, &system) { // it names the file beside path
+			err = system.Err
+		}
+		return fmt.Errorf("writing the road map %s: %w", path, err)
 	}
 	defer func() {
 		if err != nil {

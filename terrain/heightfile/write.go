@@ -2,9 +2,11 @@ package heightfile
 
 import (
 	"encoding/binary"
+	"errors"
 	"fmt"
 	"hash/crc32"
 	"io"
+	"io/fs"
 	"math"
 	"os"
 	"path/filepath"
@@ -25,6 +27,10 @@ func Write(path string, r *terrain.Raster) (err error) {
 	dir := filepath.Dir(path)
 	f, err := os.CreateTemp(dir, "."+filepath.Base(path)+".*")
 	if err != nil {
+		var system *fs.PathError
+		if errors.As(err, &system) { // it names the file beside path
+			err = system.Err
+		}
 		return fail(err)
 	}
 	defer func() {
