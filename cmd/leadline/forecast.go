@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"io"
 	"io/fs"
+	"math"
 	"os"
 	"path/filepath"
 	"strconv"
@@ -12,6 +13,7 @@ import (
 
 	"github.com/spf13/cobra"
 
+	"leadline/engine/sensor"
 	"leadline/engine/study/forecast"
 	"leadline/engine/study/track"
 )
@@ -64,8 +66,8 @@ func forecastRoutes(c *cobra.Command, o forecastOptions, paths []string) error {
 	if o.MaxCells < 1 {
 		return fmt.Errorf("--max-cells is %d: give a whole number, 1 or more", o.MaxCells)
 	}
-	if o.speed < 0 {
-		return fmt.Errorf("--speed is %v: give metres a second above 0", o.speed)
+	if given := c.Flags().Changed("speed"); given && !(o.speed > 0 && o.speed <= math.MaxFloat64) {
+		return fmt.Errorf("--speed is %v: give metres a second, a number above 0", o.speed)
 	}
 	rates, err := parseRates(o.rates)
 	if err != nil {
@@ -80,44 +82,28 @@ func forecastRoutes(c *cobra.Command, o forecastOptions, paths []string) error {
 	if err != nil {
 		return err
 	}
+	ctx, stop := untilSignal()
+	defer stop()
+	o.Stop = ctx.Err
 	if o.whole != "" {
-		return o.wholeMap(c.OutOrStdout(), m, suite, rates)
+		err := o.wholeMap(c.OutOrStdout(), m, suite, rates)
+		if ctx.Err() != nil && errors.Is(err, ctx.Err()) {
+			return failure{errors.New("interrupted: nothing was written")}
+		}
+		return err
 	}
 	var all []*forecast.Forecast
+	var failed []error
 	for _, path := range paths {
-		route, err := readRoute(path)
-		if err != nil {
-			return err
+		f, err := o.route(c, m, suite, rates, path)
+		if err != nil && ctx.Err() != nil {
+			break
 		}
-		laid, err := forecast.NewPath(m.Space, route, o.speed)
-		if err != nil {
-			return err
+		if err != nil { // of this route: the others are forecast all the same
+			failed = append(failed, err)
+			continue
 		}
-		plan, err := forecast.NewPlan(laid, suite, rates, o.startSigma)
-		if err != nil {
-			return fmt.Errorf("%s: %w", path, err)
-		}
-		show, end := progress(c.ErrOrStderr(), route.Name)
-		o.Progress = show
-		f, err := forecast.Of(plan, o.Options)
-		end()
-		if err != nil {
-			return fmt.Errorf("%s: %w", path, err)
-		}
-		f.Route = route.Name
-		if o.picture != "" {
-			if err := writeFile(pictureName(o.picture, path, len(paths)), func(w io.Writer) error {
-				return f.Picture(w, track.Ground{Frame: m.Space.Frame(), Roads: m.lines(), Relief: m.field()})
-			}); err != nil {
-				return err
-			}
-		}
-		if o.asJSON {
-			err = printJSONLine(c.OutOrStdout(), f)
-		} else {
-			err = printForecast(c.OutOrStdout(), f)
-		}
-		if err != nil {
+		if err := o.show(c.OutOrStdout(), m, f, pictureName(o.picture, path, len(paths))); err != nil {
 			return err
 		}
 		all = append(all, f)
@@ -127,10 +113,63 @@ func forecastRoutes(c *cobra.Command, o forecastOptions, paths []string) error {
 			return err
 		}
 	}
-	if o.geojson != "" {
-		return writeFile(o.geojson, func(w io.Writer) error { return forecast.WriteGeoJSON(w, all) })
+	if o.geojson != "" && len(all) > 0 {
+		if err := writeFile(o.geojson, func(w io.Writer) error { return forecast.WriteGeoJSON(w, all) }); err != nil {
+			return err
+		}
 	}
-	return nil
+	if ctx.Err() != nil && len(all)+len(failed) < len(paths) {
+		kept := "nothing was kept"
+		if len(all) > 0 {
+			kept = "what was done is printed"
+		}
+		failed = append(failed, fmt.Errorf("interrupted after %d of %d routes: %s", len(all)+len(failed), len(paths), kept))
+		return failure{errors.Join(failed...)}
+	}
+	if len(failed) > 0 && len(paths) > 1 {
+		failed = append(failed, fmt.Errorf("%d of %d routes were forecast", len(all), len(paths)))
+	}
+	return errors.Join(failed...)
+}
+
+// route forecasts one.
+func (o forecastOptions) route(c *cobra.Command, m *mapFile, suite *sensor.Suite, rates map[string]float64, path string) (*forecast.Forecast, error) {
+	route, err := readRoute(path)
+	if err != nil {
+		return nil, err
+	}
+	laid, err := forecast.NewPath(m.Space, route, o.speed)
+	if err != nil {
+		return nil, err
+	}
+	plan, err := forecast.NewPlan(laid, suite, rates, o.startSigma)
+	if err != nil {
+		return nil, fmt.Errorf("%s: %w", path, err)
+	}
+	show, end := progress(c.ErrOrStderr(), route.Name)
+	defer end()
+	o.Progress = show
+	f, err := forecast.Of(plan, o.Options)
+	if err != nil {
+		return nil, fmt.Errorf("%s: %w", path, err)
+	}
+	f.Route = route.Name
+	return f, nil
+}
+
+// show prints a forecast, and draws it if that is asked for.
+func (o *forecastOptions) show(w io.Writer, m *mapFile, f *forecast.Forecast, picture string) error {
+	if o.picture != "" {
+		if err := writeFile(picture, func(w io.Writer) error {
+			return f.Picture(w, track.Ground{Frame: m.Space.Frame(), Roads: m.lines(), Relief: m.field()})
+		}); err != nil {
+			return err
+		}
+	}
+	if o.asJSON {
+		return printJSONLine(w, f)
+	}
+	return printForecast(w, f)
 }
 
 // pictureName tells the pictures of several routes apart.

@@ -20,7 +20,7 @@ const mostWhole = 10_000
 // whole writes what a whole map tells: GeoJSON of a road map's edges, two rasters of
 // a height map.
 func (o *forecastOptions) wholeMap(w io.Writer, m *mapFile, suite *sensor.Suite, rates map[string]float64) error {
-	with := forecast.WholeOptions{SpeedMPS: o.speed, StretchM: o.StretchM, LimitM: o.LimitM, Rates: rates}
+	with := forecast.WholeOptions{SpeedMPS: o.speed, StretchM: o.StretchM, LimitM: o.LimitM, Rates: rates, Stop: o.Stop}
 	if m.Roads != nil {
 		spots, err := forecast.Roads(m.Roads, suite, with)
 		if err != nil {

@@ -154,6 +154,9 @@ func Heights(space filter.PlaneSpace, suite *sensor.Suite, points []geo.Point, o
 func Roads(space filter.LineSpace, suite *sensor.Suite, o WholeOptions) ([]Spot, error) {
 	if o.SpeedMPS == 0 {
 		o.SpeedMPS = 10 // the comparison with the road is by distance
+		if most := suite.Vehicle.MaxSpeedMPS; most > 0 {
+			o.SpeedMPS = math.Min(o.SpeedMPS, most)
+		}
 	}
 	p, stepM, err := bare(space, suite, &o)
 	if err != nil {
