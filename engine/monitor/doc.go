@@ -9,7 +9,10 @@
 //
 //	S ← max(0, S + ln p₁(z) - ln p₀(z)),
 //
-// which is alarmed from a threshold on. The threshold is computed from the rate
+// which is alarmed from a threshold on. Where the noise allows for outliers, scores of
+// large errors saturate: there the chart of the spread adds the log ratio of the
+// measurement's densities with noise twice as wide and as stated, which is given with
+// the score, under the same threshold. The threshold is computed from the rate
 // of false alarms that is allowed (runlength.go). Nothing here has a clock: times
 // come with the scores, so the same scores give the same alarms.
 package monitor
