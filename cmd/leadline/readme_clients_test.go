@@ -6,6 +6,9 @@ import (
 	"path/filepath"
 	"strings"
 	"testing"
+
+	"leadline/engine/client"
+	"leadline/engine/wire"
 )
 
 // TestReadmePrograms runs the programs of the README's chapter on connecting
@@ -60,5 +63,54 @@ func TestReadmePrograms(t *testing.T) {
 				t.Errorf("the program in %s prints %s", language, text)
 			}
 		})
+	}
+}
+
+// TestReadmeSighting posts the README's sighting as it stands, but for the server's
+// address, of a vehicle whose drive goes on: it is entered; on a road that the map does
+// not have it is refused with an answer all the same.
+func TestReadmeSighting(t *testing.T) {
+	t.Parallel()
+	if _, err := exec.LookPath("curl"); err != nil {
+		t.Skip("curl is not installed")
+	}
+	var code string
+	for _, block := range strings.Split(readPage(t, "README.md"), "\n```sh\n") {
+		if block, _, _ := strings.Cut(block, "```"); strings.Contains(block, "/AddSighting") {
+			code = block
+		}
+	}
+	if code == "" {
+		t.Fatal("README.md has no request of AddSighting")
+	}
+	mapPath := filepath.Join(t.TempDir(), "quillmere.roads.arrow")
+	good(t, "map", "roads", checkout+"/fixtures/roads/quillmere.geojson", "-o", mapPath)
+	srv := serveMaps(t, "--map", mapPath)
+	d, err := readDrive(checkout + "/docs/first.drive.jsonl")
+	if err != nil {
+		t.Fatal(err)
+	}
+	f, err := client.Open(t.Context(), atServer(t, srv), client.Drive{Header: wire.FromHeader(d.Header)})
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, ev := range d.Events {
+		if err := f.Send(wire.FromEvent(ev)); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if err := f.Leave(); err != nil {
+		t.Fatal(err)
+	}
+	post := func(road string) (text string) {
+		t.Helper()
+		code := strings.ReplaceAll(strings.ReplaceAll(code, defaultAddress, srv.address), "Market Street", road)
+		return start(t, "sh", "-c", strings.Replace(code, "curl -s", "curl -s -w ' status %{http_code}'", 1)).end(t)
+	}
+	if text := post("Market Street"); !strings.Contains(text, " status 200") || !strings.Contains(text, `"after"`) || strings.Contains(text, `"reason"`) {
+		t.Errorf("it was not entered: %s", text)
+	}
+	if text := post("a road that is nowhere"); !strings.Contains(text, " status 200") || !strings.Contains(text, `"refusal"`) || !strings.Contains(text, "a road that is nowhere") || !strings.Contains(text, `"detail"`) {
+		t.Errorf("it was not refused: %s", text)
 	}
 }
