@@ -169,5 +169,8 @@ func (o *feedOptions) sendKept(c *cobra.Command) error {
 	if err != nil {
 		return err
 	}
+	if !c.Flags().Changed("leave-open") {
+		o.leaveOpen = s.KeptOpen()
+	}
 	return o.end(c, s, o.keep, s.Name(), &refused)
 }

@@ -81,7 +81,15 @@ func TestFeedKept(t *testing.T) {
 	if status := f.stop(t); status != exitDone || !strings.Contains(f.out.String(), "second is left open") {
 		t.Errorf("status %d: %s%s", status, f.out, f.errs)
 	}
+	// The file alone is sent as its feed was asked: the drive is left open again.
 	out, errs, status = leadline(t, "feed", "--keep", file, "--to", srv.address)
+	if status != exitDone || !strings.Contains(out, "second is left open") {
+		t.Errorf("status %d: %s%s", status, out, errs)
+	}
+	if l := heard(t, srv, 20); l.Ended {
+		t.Error("it was to be left open, and has ended")
+	}
+	out, errs, status = leadline(t, "feed", "--keep", file, "--to", srv.address, "--leave-open=false")
 	if status != exitDone || !strings.Contains(out, "sha256 ") || strings.Contains(errs, " holds ") {
 		t.Errorf("status %d: %s%s", status, out, errs)
 	}

@@ -153,7 +153,15 @@ var _, _ sink = (*client.Feed)(nil), (*keptSink)(nil)
 
 func (o *feedOptions) openSink(errs io.Writer, conn *grpc.ClientConn, d client.Drive) (sink, error) {
 	if o.keep != "" {
-		return o.openKept(errs, conn, d, o.address)
+		s, err := o.openKept(errs, conn, d, o.address)
+		if err != nil {
+			return nil, err
+		}
+		if err := s.KeepOpen(o.leaveOpen); err != nil {
+			s.Abort()
+			return nil, o.keepError(err, false)
+		}
+		return s, nil
 	}
 	f, err := client.Open(context.Background(), conn, d)
 	if err != nil {

@@ -33,6 +33,8 @@ import (
 //	         after   8 bytes: the number of the last batch that was let go
 //	         last    8 bytes: the number of the last batch
 //	         durable 8 bytes: the highest, of the server's, that it has durably
+//	         open    "1" if the drive is not to be ended; else it is not there, as in
+//	                 files of earlier versions, which pass over it
 //	batches  number, 8 bytes: CRC-32C, little endian, and leadline.v1.Batch
 type file struct {
 	path string
@@ -52,6 +54,7 @@ type file struct {
 type state struct {
 	asked, name          string
 	base, after, durable uint64
+	open                 bool // the drive is not to be ended
 }
 
 var _ client.Queue = (*file)(nil)
@@ -61,6 +64,7 @@ const layout = "1"
 var (
 	aboutBucket   = []byte("about")
 	batchesBucket = []byte("batches")
+	openKey       = []byte("open")
 	castagnoli    = crc32.MakeTable(crc32.Castagnoli)
 )
 
@@ -125,6 +129,7 @@ func (f *file) begin(d *client.Drive) error {
 		f.state = state{
 			asked: string(about.Get([]byte("asked"))), name: string(about.Get([]byte("name"))),
 			base: number(about.Get([]byte("base"))), after: number(about.Get([]byte("after"))), durable: number(about.Get([]byte("durable"))),
+			open: about.Get(openKey) != nil,
 		}
 		var had leadlinev1.DriveHeader
 		if err := proto.Unmarshal(about.Get([]byte("header")), &had); err != nil {
@@ -182,7 +187,14 @@ func (f *file) make(tx *bolt.Tx, d *client.Drive) error {
 
 func (s *state) put(about *bolt.Bucket) error {
 	return errors.Join(about.Put([]byte("asked"), []byte(s.asked)), about.Put([]byte("name"), []byte(s.name)),
-		about.Put([]byte("base"), key(s.base)), about.Put([]byte("after"), key(s.after)), about.Put([]byte("durable"), key(s.durable)))
+		about.Put([]byte("base"), key(s.base)), about.Put([]byte("after"), key(s.after)), about.Put([]byte("durable"), key(s.durable)), s.putOpen(about))
+}
+
+func (s *state) putOpen(about *bolt.Bucket) error {
+	if s.open {
+		return about.Put(openKey, []byte("1"))
+	}
+	return about.Delete(openKey)
 }
 
 func (f *file) damaged(what string, err error) error {
@@ -311,6 +323,15 @@ func (f *file) write(next state) error {
 	}
 	f.state, f.size, f.count, f.settled = next, size, count, time.Now()
 	return nil
+}
+
+// keepOpen notes whether the drive is not to be ended.
+func (f *file) keepOpen(open bool) error {
+	f.mu.Lock()
+	defer f.mu.Unlock()
+	next := f.state
+	next.open = open
+	return f.write(next)
 }
 
 func (f *file) drive() string {

@@ -88,6 +88,17 @@ func Open(path string, o Options) (*Outbox, error) {
 // Name is the drive's name; after OnForgotten another one.
 func (b *Outbox) Name() string { return b.file.drive() }
 
+// KeepOpen notes in the file whether the drive is to be left open when the file is sent:
+// for whoever sends it, since Close ends the drive in any case.
+func (b *Outbox) KeepOpen(open bool) error { return b.file.keepOpen(open) }
+
+// KeptOpen is what KeepOpen noted last, false if nothing.
+func (b *Outbox) KeptOpen() bool {
+	b.file.mu.Lock()
+	defer b.file.mu.Unlock()
+	return b.file.state.open
+}
+
 // Waiting is how many measurements the file holds that no server has yet.
 func (b *Outbox) Waiting() int { return b.file.waiting() }
 
