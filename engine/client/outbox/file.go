@@ -50,13 +50,6 @@ type file struct {
 	settled time.Time
 }
 
-// state is what is in "about", but for the header.
-type state struct {
-	asked, name          string
-	base, after, durable uint64
-	open                 bool // the drive is not to be ended
-}
-
 var _ client.Queue = (*file)(nil)
 
 const layout = "1"
@@ -64,7 +57,6 @@ const layout = "1"
 var (
 	aboutBucket   = []byte("about")
 	batchesBucket = []byte("batches")
-	openKey       = []byte("open")
 	castagnoli    = crc32.MakeTable(crc32.Castagnoli)
 )
 
@@ -183,18 +175,6 @@ func (f *file) make(tx *bolt.Tx, d *client.Drive) error {
 		return err
 	}
 	return errors.Join(about.Put([]byte("layout"), []byte(layout)), about.Put([]byte("header"), header), f.state.put(about))
-}
-
-func (s *state) put(about *bolt.Bucket) error {
-	return errors.Join(about.Put([]byte("asked"), []byte(s.asked)), about.Put([]byte("name"), []byte(s.name)),
-		about.Put([]byte("base"), key(s.base)), about.Put([]byte("after"), key(s.after)), about.Put([]byte("durable"), key(s.durable)), s.putOpen(about))
-}
-
-func (s *state) putOpen(about *bolt.Bucket) error {
-	if s.open {
-		return about.Put(openKey, []byte("1"))
-	}
-	return about.Delete(openKey)
 }
 
 func (f *file) damaged(what string, err error) error {
@@ -323,39 +303,6 @@ func (f *file) write(next state) error {
 	}
 	f.state, f.size, f.count, f.settled = next, size, count, time.Now()
 	return nil
-}
-
-// keepOpen notes whether the drive is not to be ended.
-func (f *file) keepOpen(open bool) error {
-	f.mu.Lock()
-	defer f.mu.Unlock()
-	next := f.state
-	next.open = open
-	return f.write(next)
-}
-
-func (f *file) drive() string {
-	f.mu.Lock()
-	defer f.mu.Unlock()
-	return f.state.name
-}
-
-func (f *file) durable() uint64 {
-	f.mu.Lock()
-	defer f.mu.Unlock()
-	return f.durably
-}
-
-func (f *file) bytes() int64 {
-	f.mu.Lock()
-	defer f.mu.Unlock()
-	return f.size
-}
-
-func (f *file) waiting() int {
-	f.mu.Lock()
-	defer f.mu.Unlock()
-	return f.count
 }
 
 // Close closes the file, which keeps what it holds.
