@@ -36,7 +36,7 @@ func tuneCommand() *cobra.Command {
 	f.StringVar(&o.suite, "suite", "", "suite file or starter name to begin with")
 	f.StringArrayVar(&o.figures, "figure", nil, "figure to tune, as KEY or KEY=LOW:HIGH, such as sensors.odo.noise.sigma_m_per_sqrt_m=0.005:0.1; repeat. Without bounds a factor of 30 to either side of the suite's figure")
 	f.IntVar(&o.holdEvery, "hold-out", 0, "hold every so-manyth drive out of the tuning, to compare before and after on; 0 holds none out")
-	f.IntVar(&o.MaxEvaluations, "max-evaluations", 0, "end the search after so many sets of figures; 0: 60 a figure")
+	f.IntVar(&o.MaxEvaluations, "max-evaluations", 0, "end the search after so many sets of figures; ranges and profiles take more; 0: 60 a figure")
 	f.BoolVar(&o.NoProfile, "no-profile", false, "leave out the profiles, which take more time than all else if there are several figures")
 	f.StringVar(&o.out, "output", "", "write the suite with what was found to this file, its comments kept")
 	f.StringVar(&o.plots, "plots", "", "write each figure's profile to this folder, as KEY.svg and KEY.png")
@@ -82,18 +82,31 @@ func tuneSuite(c *cobra.Command, o tuneOptions, paths []string) error {
 		most := 100 * len(o.Figures)
 		o.Progress = func(n int) { show(n, max(n, most)) }
 	}
+	ctx, stop := untilSignal()
+	defer stop()
+	o.Stop = ctx.Err
 	r, err := tune.Run(suite, drives, held, o.Options)
 	done()
-	if err != nil {
+	switch {
+	case err != nil && ctx.Err() != nil:
+		return failure{errors.New("interrupted before anything was found")}
+	case err != nil:
 		return err
 	}
-	if err := o.write(r, text); err != nil {
-		return err
+	if !r.Interrupted {
+		if err := o.write(r, text); err != nil {
+			return err
+		}
 	}
 	if o.asJSON {
-		return printJSON(c.OutOrStdout(), r)
+		err = printJSON(c.OutOrStdout(), r)
+	} else {
+		err = printTuned(c.OutOrStdout(), r)
 	}
-	return printTuned(c.OutOrStdout(), r)
+	if err == nil && r.Interrupted {
+		err = failure{fmt.Errorf("interrupted after %d sets of figures: what is printed is the best so far, and no file was written", r.Evaluations)}
+	}
+	return err
 }
 
 // parseFigure reads KEY or KEY=LOW:HIGH.
@@ -191,12 +204,17 @@ func printTuned(w io.Writer, r *tune.Result) error {
 		switch {
 		case t.Known == tune.Silent:
 			fmt.Fprintf(&b, "%s, from %s to %s", t.Known, tune.Text(t.Low), tune.Text(t.High))
+		case t.Known == tune.BestSoFar:
+			fmt.Fprintf(&b, "%s %s", t.Known, tune.Text(*t.Value))
 		case t.Known != tune.Estimated:
 			fmt.Fprintf(&b, "%s %s (95 %%)", t.Known, tune.Text(*t.Value))
 		case t.LogSigma == nil:
 			fmt.Fprintf(&b, "%s, without a standard error: the evidence has no sharp top, see the profile", tune.Text(*t.Value))
 		default:
 			fmt.Fprintf(&b, "%s, 95 %% from %s to %s", tune.Text(*t.Value), tune.Text(*t.From), tune.Text(*t.To))
+		}
+		if !r.Converged {
+			b.WriteString(" (not firm: the search was cut short)")
 		}
 		if t.Given {
 			fmt.Fprintf(&b, "; the suite had %s\n", tune.Text(t.Before))
@@ -214,14 +232,17 @@ func printTuned(w io.Writer, r *tune.Result) error {
 			b.WriteString(": what was found does not hold there")
 		}
 		b.WriteByte('\n')
-	} else {
+	} else if !r.Interrupted {
 		b.WriteString("no drive was held out: whether it holds on others is not known (--hold-out)\n")
 	}
 	ended := "the search ended by itself"
-	if !r.Converged {
+	switch {
+	case r.Interrupted && !r.Converged:
+		ended = "the search was interrupted"
+	case !r.Converged:
 		ended = "the search was cut short: give more --max-evaluations"
 	}
-	fmt.Fprintf(&b, "%d sets of figures were tried; %s\n", r.Evaluations, ended)
+	fmt.Fprintf(&b, "%d sets of figures were tried, %d of them in the search; %s\n", r.Evaluations, r.Searched, ended)
 	_, err := io.WriteString(w, oneLinePerLine(b.String()))
 	return err
 }

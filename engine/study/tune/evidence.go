@@ -33,6 +33,7 @@ type evaluator struct {
 	known    map[string][]float64 // by figures: one a drive
 	count    int                  // of figures that were tried
 	progress func(count int)
+	stop     func() error
 }
 
 // impossibleNats is what a measurement counts for that is impossible everywhere,
@@ -86,7 +87,7 @@ func (e *evaluator) of(points [][]float64) ([][]float64, error) {
 	for range min(len(units), runtime.GOMAXPROCS(0)) {
 		wait.Go(func() {
 			for u := range next {
-				*u.dst, *u.err = e.drives[u.drive].evidence(u.suite, e.maxCells)
+				*u.dst, *u.err = e.drives[u.drive].evidence(u.suite, e.maxCells, e.stop)
 			}
 		})
 	}
@@ -140,9 +141,15 @@ func nameOf(x []float64) string {
 
 // evidence replays a drive. Every measurement that is accepted counts, those of a
 // sensor that a session would isolate, too.
-func (d *Drive) evidence(suite *sensor.Suite, maxCells int) (float64, error) {
+func (d *Drive) evidence(suite *sensor.Suite, maxCells int, stop func() error) (float64, error) {
+	if stop != nil {
+		if err := stop(); err != nil {
+			return 0, err
+		}
+	}
 	impossible := 0
 	r, err := replay.Run(d.Drive, session.Config{Space: d.Space, Names: d.Names, Suite: suite, MaxCells: maxCells, Unguarded: true}, replay.Options{
+		Stop: stop,
 		Watch: func(c session.Change) {
 			if math.IsInf(c.LogEvidence, -1) {
 				impossible++

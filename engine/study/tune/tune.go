@@ -32,6 +32,9 @@ type Options struct {
 	NoProfile bool
 	// Progress, if set, is called with the number of evaluations now and then.
 	Progress func(evaluations int)
+	// Stop, if set, is asked often, also by several goroutines: an error of it ends
+	// the tuning with what was found so far.
+	Stop func() error
 }
 
 const maxFigures = 6
@@ -39,6 +42,8 @@ const maxFigures = 6
 // What is known of a figure.
 const (
 	Estimated = "estimated"
+	// BestSoFar: the tuning was interrupted before it was known what the figure is.
+	BestSoFar = "best so far"
 	// Silent: whatever it is within its bounds, the log evidence stays within a
 	// nat of its maximum.
 	Silent = "the drives say nothing of it"
@@ -101,6 +106,10 @@ type Result struct {
 	// Evaluations is how many sets of figures were tried, those for curvature and
 	// profiles and for the drives held out included.
 	Evaluations int `json:"evaluations"`
+	// Searched is how many of them the search itself tried, at most MaxEvaluations.
+	Searched int `json:"search_evaluations"`
+	// Interrupted says that Stop ended it.
+	Interrupted bool `json:"interrupted"`
 	// Converged says that the search ended by itself.
 	Converged bool `json:"converged"`
 	// Suite is the suite with what was found.
@@ -135,25 +144,45 @@ func Run(suite *sensor.Suite, drives, held []Drive, o Options) (*Result, error) 
 		return nil, err
 	}
 	r.Before, s.most = before[0], before[0]
-	if err := s.climb(o, r); err != nil {
-		return nil, err
-	}
-	if err := s.know(r); err != nil {
-		return nil, err
-	}
-	if err := s.curve(r); err != nil {
-		return nil, err
-	}
-	if !o.NoProfile {
-		if err := s.profiles(r); err != nil {
-			return nil, err
-		}
-	}
-	r.After = s.most
-	if err := s.write(r, held, start, o); err != nil {
+	err = s.steps(r, held, start, o)
+	switch {
+	case err != nil && o.Stop != nil && o.Stop() != nil:
+		s.cut(r)
+	case err != nil:
 		return nil, err
 	}
 	return r, nil
+}
+
+// steps are what follows the first evaluation.
+func (s *search) steps(r *Result, held []Drive, start []float64, o Options) error {
+	if err := s.climb(o, r); err != nil {
+		return err
+	}
+	if err := s.know(r); err != nil {
+		return err
+	}
+	if err := s.curve(r); err != nil {
+		return err
+	}
+	if !o.NoProfile {
+		if err := s.profiles(r); err != nil {
+			return err
+		}
+	}
+	r.After = s.most
+	return s.write(r, held, start, o)
+}
+
+// cut ends a tuning that was interrupted with what is known.
+func (s *search) cut(r *Result) {
+	r.Interrupted, r.After, r.Evaluations, r.Suite, r.Held = true, s.most, s.count, s.suite, 0
+	for i := range r.Figures {
+		if t := &r.Figures[i]; t.Known == "" || t.Value == nil && t.Known != Silent {
+			v := math.Exp(s.best[i])
+			t.Known, t.Value = BestSoFar, &v
+		}
+	}
 }
 
 // begin checks what is asked for and prepares the drives.
@@ -161,7 +190,7 @@ func begin(suite *sensor.Suite, drives []Drive, o Options) (*search, *Result, er
 	if n := len(o.Figures); n == 0 || n > maxFigures {
 		return nil, nil, fmt.Errorf("%d figures are to be tuned: give 1 to %d", n, maxFigures)
 	}
-	s := &search{evaluator: &evaluator{suite: suite, maxCells: o.MaxCells, known: map[string][]float64{}, progress: o.Progress}}
+	s := &search{evaluator: &evaluator{suite: suite, maxCells: o.MaxCells, known: map[string][]float64{}, progress: o.Progress, stop: o.Stop}}
 	r := &Result{Drives: len(drives)}
 	noise := map[string]bool{}
 	for i, f := range o.Figures {
@@ -288,7 +317,11 @@ func (s *search) climb(o Options, r *Result) error {
 		most = 60 * len(s.best)
 	}
 	best, value, converged, err := s.maximum(s.best, free, most, simplexSize)
+	r.Searched = s.count
 	if err != nil {
+		if value > s.most {
+			s.best, s.most = best, value
+		}
 		return err
 	}
 	r.Converged = converged
@@ -344,7 +377,7 @@ func (s *search) maximum(from []float64, free []bool, mostEvaluations int, size 
 	}
 	result, err := optimize.Minimize(problem, y, settings, &optimize.NelderMead{SimplexSize: size})
 	if s.failed != nil {
-		return nil, 0, false, s.failed
+		return best, value, false, s.failed
 	}
 	if result == nil {
 		return nil, 0, false, fmt.Errorf("searching for the maximum: %w", err)

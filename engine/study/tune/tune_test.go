@@ -1,6 +1,7 @@
 package tune
 
 import (
+	"errors"
 	"reflect"
 	"runtime"
 	"strings"
@@ -84,6 +85,29 @@ func TestSaysWhatIsNotKnown(t *testing.T) {
 	}
 	if two := of(2); !reflect.DeepEqual(one, two) {
 		t.Error("one and two processors give different results")
+	}
+}
+
+// TestStops: a tuning that is stopped gives the best so far, and a bound holds for
+// the search.
+func TestStops(t *testing.T) {
+	all := flights(t, 5, 1, 20)
+	o := Options{Figures: []Figure{{Key: altimeterKey}}, MaxCells: 100, NoProfile: true, MaxEvaluations: 4}
+	r, err := Run(parsed(t, drives.Guessed), all, nil, o)
+	if err != nil || r.Converged || r.Searched < 2 || r.Searched > 4 || r.Evaluations <= r.Searched || r.Interrupted {
+		t.Fatalf("cut short: %+v, %v", r, err)
+	}
+	tried := 0
+	o.Progress = func(n int) { tried = n }
+	o.Stop = func() error {
+		if tried >= 3 {
+			return errors.New("enough")
+		}
+		return nil
+	}
+	r, err = Run(parsed(t, drives.Guessed), all, nil, o)
+	if err != nil || !r.Interrupted || r.Figures[0].Known != BestSoFar || !(*r.Figures[0].Value > 0) || r.After < r.Before {
+		t.Fatalf("stopped: %+v, %v", r, err)
 	}
 }
 
