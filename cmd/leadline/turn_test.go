@@ -52,7 +52,7 @@ func (h *half) Feed(st grpc.BidiStreamingServer[leadlinev1.FeedRequest, leadline
 	for {
 		m, err := st.Recv()
 		if err != nil {
-			return nil
+			return nil //nolint:nilerr // the client has gone
 		}
 		if err := h.cutOff(); err != nil {
 			return err
@@ -131,7 +131,7 @@ func TestOtherClientsTurn(t *testing.T) {
 				}
 				s := grpc.NewServer()
 				leadlinev1.RegisterPositionServiceServer(s, &half{of: of})
-				go s.Serve(l)
+				go func() { _ = s.Serve(l) }() // until it is stopped
 				t.Cleanup(s.Stop)
 				addresses = append(addresses, l.Addr().String())
 			}

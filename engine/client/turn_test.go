@@ -53,7 +53,7 @@ func (c *cuttable) Feed(st serverStream) error {
 	for {
 		m, err := st.Recv()
 		if err != nil {
-			return nil
+			return nil //nolint:nilerr // the client has gone
 		}
 		if c.cut.Load() {
 			return cutOffError()
@@ -80,7 +80,7 @@ func two(t *testing.T, aside time.Duration) (of [2]*cuttable, conn *grpc.ClientC
 		s := grpc.NewServer()
 		of[i] = &cuttable{have: have}
 		leadlinev1.RegisterPositionServiceServer(s, of[i])
-		go s.Serve(l)
+		go func() { _ = s.Serve(l) }() // until it is stopped
 		t.Cleanup(s.Stop)
 		turn.all = append(turn.all, resolver.Address{Addr: l.Addr().String()})
 	}
