@@ -111,19 +111,25 @@ func TestPastRuns(t *testing.T) {
 	load(calm, rough)
 	p.says("#past-figures", "rough.csv")
 	p.await("nothing more is said of a bad file", "document.querySelector('#past-trouble').innerText === ''")
-	worst := func(which string, second int) {
+	byKey := func(element string) {
+		p.tabTo(element)
+		p.press("Enter")
+	}
+	worst := func(which string, second int, press func(element string)) {
 		t.Helper()
-		p.click(fmt.Sprintf("[...document.querySelectorAll('button')].find(e => e.innerText === 'To the worst stretch of %s')", which))
+		press(fmt.Sprintf("[...document.querySelectorAll('button')].find(e => e.innerText === 'To the worst stretch of %s')", which))
 		p.says("#past-now", fmt.Sprintf("00:%02d:%02d UTC", second/60, second%60))
 	}
-	worst("the second", 99)
+	worst("the second", 99, p.click)
 	if got := strings.Join(strings.Fields(p.text("#past-figures")), " "); !strings.Contains(got, "95 % within 4 m 80 m") || !strings.Contains(got, "Error 2 m 40 m") {
 		t.Errorf("at its worst: %s", got)
 	}
 	p.await("the map", "document.querySelector('.legend')?.innerText.includes('truth')")
 	p.audit("past runs")
 	p.looks("past")
-	worst("the first", 199)
+	worst("the first", 199, p.click)
+	worst("the second", 99, byKey)
+	worst("the first", 199, byKey)
 
 	// By keyboard: the drive in place of the first, and through its time.
 	p.tabTo("document.querySelector('[name=first]')")
@@ -140,12 +146,18 @@ func TestPastRuns(t *testing.T) {
 	p.press("End")
 	p.says("#past-now", closed.GetPosterior().GetTime().AsTime().Format("15:04:05"))
 
-	// A result of the server's folder beside it, by keyboard, and its alarm by mouse.
+	// A result of the server's folder beside it, by keyboard, and its alarm by mouse and key.
 	p.tabTo("document.querySelector('[name=second]')")
 	p.press("ArrowDown", "ArrowDown")
 	p.says("#past-figures", "wheels=poor/van")
 	p.says("section table:last-of-type", "bias gyro, until 00:01:20")
-	p.click("[...document.querySelectorAll('table button')].find(e => e.innerText === '00:01:00')")
+	alarm := "[...document.querySelectorAll('table button')].find(e => e.innerText === '00:01:00')"
+	p.click(alarm)
+	p.says("#past-now", "00:01:00 UTC")
+	p.tabTo("document.getElementById('past-time')")
+	p.press("End")
+	p.await("another time", "!document.querySelector('#past-now').innerText.includes('00:01:00 UTC')")
+	byKey(alarm)
 	p.says("#past-now", "00:01:00 UTC")
 	p.says("#past-figures", "80\u00a0m")
 	p.resize(390, 844)

@@ -84,14 +84,20 @@ func TestTasks(t *testing.T) {
 		t.Errorf("the page says %q, the server has %v", p.text("#inside-answer"), within.GetAreaProbability())
 	}
 
-	// A risk, by keyboard.
-	p.tabTo("document.querySelector('[aria-labelledby=risk] select')")
-	p.press("ArrowDown")
-	p.says("#protection-answer", "a risk of 0.01,")
-	var metres float64
-	if _, err := fmt.Sscanf(strings.ReplaceAll(p.text("#protection-answer b"), "\u00a0", " "), "%f m", &metres); err != nil || math.Abs(metres-within.GetProtection().GetRadiusM()) > 0.06*metres {
-		t.Errorf("the page says %q, the server has %v", p.text("#protection-answer"), within.GetProtection())
+	// A risk, by mouse, and another by keyboard.
+	protects := func(risk string, of *leadlinev1.Protection) {
+		t.Helper()
+		p.says("#protection-answer", "a risk of "+risk+",")
+		var metres float64
+		if _, err := fmt.Sscanf(strings.ReplaceAll(p.text("#protection-answer b"), "\u00a0", " "), "%f m", &metres); err != nil || math.Abs(metres-of.GetRadiusM()) > 0.06*metres {
+			t.Errorf("the page says %q, the server has %v", p.text("#protection-answer"), of)
+		}
 	}
+	box := "document.querySelector('[aria-labelledby=risk] select')"
+	p.chooseByMouse(box, "0.001")
+	protects("0.001", r.where(&leadlinev1.WhereRequest{Vehicles: []string{"van"}, IntegrityRisk: proto.Float64(0.001)}, accepted).GetProtection())
+	p.chooseByKeys(box, "0.01")
+	protects("0.01", within.GetProtection())
 	p.looks("chances")
 	p.audit("chances, dark")
 
