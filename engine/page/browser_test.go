@@ -398,6 +398,7 @@ func (p *tab) looks(name string) {
 		}{{"narrow", 390, 844}, {"wide", 1440, 900}} {
 			p.resize(size.width, size.height)
 			p.await("the page has its size and light", fmt.Sprintf("innerWidth === %d && document.documentElement.dataset.lightness === %q && new Promise(done => requestAnimationFrame(() => requestAnimationFrame(() => done(true))))", size.width, scheme))
+			p.await("maps are not stretched", "[...document.querySelectorAll('.map canvas')].every(c => Math.abs(c.width / c.clientWidth - c.height / c.clientHeight) < .02)")
 			p.shoot(name + "-" + size.name + "-" + scheme)
 		}
 	}
