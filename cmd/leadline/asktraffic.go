@@ -6,9 +6,6 @@ import (
 	"fmt"
 	"io"
 	"math"
-	"os"
-	"os/signal"
-	"syscall"
 	"time"
 
 	"github.com/spf13/cobra"
@@ -51,7 +48,7 @@ func askTraffic(c *cobra.Command, o *trafficOptions, road string) error {
 		return err
 	}
 	defer conn.Close()
-	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
+	ctx, stop := untilSignal()
 	defer stop()
 	err = client.FollowTraffic(ctx, conn, &leadlinev1.FollowTrafficRequest{Traffic: req, MinIntervalS: o.everyS}, func(m *leadlinev1.FollowTrafficResponse) error {
 		return say(m.GetPicture())

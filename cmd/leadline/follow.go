@@ -7,10 +7,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
-	"os"
-	"os/signal"
 	"strings"
-	"syscall"
 	"time"
 
 	"github.com/spf13/cobra"
@@ -113,7 +110,7 @@ func follow(c *cobra.Command, o *followOptions, vehicles []string) error {
 		return err
 	}
 	defer conn.Close()
-	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
+	ctx, stop := untilSignal()
 	defer stop()
 	w, n := c.OutOrStdout(), 0
 	await(ctx, c.ErrOrStderr(), conn, o.address, vehicles)

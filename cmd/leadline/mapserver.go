@@ -6,9 +6,7 @@ import (
 	"fmt"
 	"io"
 	"os"
-	"os/signal"
 	"strings"
-	"syscall"
 
 	"github.com/spf13/cobra"
 
@@ -136,7 +134,7 @@ func sendMap(c *cobra.Command, to *reach, path, name string, replace, asJSON boo
 		return err
 	}
 	defer conn.Close()
-	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
+	ctx, stop := untilSignal()
 	defer stop()
 	done := "uploaded"
 	if before, err := leadlinev1.NewPositionServiceClient(conn).DescribeMap(ctx, &leadlinev1.DescribeMapRequest{Map: b.Name}); err == nil && replace {

@@ -7,12 +7,10 @@ import (
 	"io"
 	"net/url"
 	"os"
-	"os/signal"
 	"runtime"
 	"slices"
 	"strings"
 	"sync"
-	"syscall"
 	"time"
 
 	"github.com/spf13/cobra"
@@ -129,7 +127,7 @@ by way of the broker. It must be the same program as the replay's.`,
 			if err != nil {
 				return err
 			}
-			ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
+			ctx, stop := untilSignal()
 			defer stop()
 			var mu sync.Mutex
 			return afar.Work(ctx, afar.WorkOptions{

@@ -5,8 +5,6 @@ import (
 	"errors"
 	"fmt"
 	"os"
-	"os/signal"
-	"syscall"
 	"time"
 
 	"github.com/spf13/cobra"
@@ -102,7 +100,7 @@ func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
 	meter := newMeter(c.ErrOrStderr(), "replaying")
 	defer meter.end()
 	job.Meter = meter
-	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
+	ctx, stop := untilSignal()
 	defer stop()
 	if o.over.broker.URL != "" {
 		queue, err := o.handOver(ctx, job, meter)

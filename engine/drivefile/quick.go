@@ -89,9 +89,7 @@ func (q *quick) object(m protoreflect.Message, depth int) bool {
 		if !q.value(m, &f, depth) {
 			return false
 		}
-		switch {
-		case q.next(','):
-		default:
+		if !q.next(',') {
 			return q.next('}')
 		}
 	}

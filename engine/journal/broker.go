@@ -173,9 +173,7 @@ func (b *broker) streamSoon(ctx context.Context, o *Options) (jetstream.Stream, 
 		ask, asked := context.WithTimeout(ctx, callTimeout)
 		st, info, err := b.stream(ask, o)
 		asked()
-		var api *jetstream.APIError
-		none := errors.Is(err, context.DeadlineExceeded) || errors.Is(err, nats.ErrNoResponders) || errors.As(err, &api) && api.Code == 503
-		if !none {
+		if !Unanswered(err) {
 			return st, info, err
 		}
 		select {
@@ -184,6 +182,14 @@ func (b *broker) streamSoon(ctx context.Context, o *Options) (jetstream.Stream, 
 			return nil, nil, err
 		}
 	}
+}
+
+// Unanswered reports whether an error is that a broker does not answer, or has no leader
+// for what was asked, which may be over soon.
+func Unanswered(err error) bool {
+	var api *jetstream.APIError
+	return errors.Is(err, nats.ErrNoResponders) || errors.Is(err, jetstream.ErrNoStreamResponse) || errors.Is(err, context.DeadlineExceeded) || errors.Is(err, nats.ErrTimeout) ||
+		errors.As(err, &api) && api.Code == 503
 }
 
 // stream opens the journal's stream, or makes it.

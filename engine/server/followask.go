@@ -177,7 +177,7 @@ type area struct {
 }
 
 func newArea(m *leadlinev1.Polygon) (*area, error) {
-	rings, err := wire.Polygon(m)
+	rings, err := wire.Area(m)
 	if err != nil {
 		return nil, err
 	}

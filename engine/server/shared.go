@@ -120,7 +120,7 @@ func (s *Server) joinSoon(ctx context.Context, do func(context.Context) error) e
 		try, cancel := context.WithTimeout(ctx, joinTry)
 		err := do(try)
 		cancel()
-		if err == nil || ctx.Err() != nil || !share.Passing(err) {
+		if err == nil || ctx.Err() != nil || !journal.Unanswered(err) {
 			return err
 		}
 		if first {

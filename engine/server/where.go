@@ -92,7 +92,7 @@ func (s *Server) question(req *leadlinev1.WhereRequest) (*question, error) {
 	}
 	if req.GetArea() != nil {
 		var err error
-		if q.area, err = wire.Polygon(req.GetArea()); err != nil {
+		if q.area, err = wire.Area(req.GetArea()); err != nil {
 			return nil, badField("area", "where: area: %v", err)
 		}
 	}

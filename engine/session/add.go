@@ -153,11 +153,11 @@ func (s *Session) enter(ev sensor.Event) ([]*summary.Posterior, error) {
 	return append(out, s.relieve()...), nil
 }
 
-// tooFast is how many times max_speed_mps no vehicle goes, and tooFarM how far
+// TooFast is how many times max_speed_mps no vehicle goes, and tooFarM how far
 // none goes in one increment: known places are at most so far from the middle of
 // a map.
 const (
-	tooFast = 10
+	TooFast = 10
 	tooFarM = 1.5e6
 )
 
@@ -181,9 +181,9 @@ func (s *Session) plausible(ev sensor.Event) error {
 		return nil
 	}
 	// 100 m more, for increments of a few milliseconds.
-	if most := tooFast*s.suite.Vehicle.MaxSpeedMPS*span + 100; d > most || sigma > most {
+	if most := TooFast*s.suite.Vehicle.MaxSpeedMPS*span + 100; d > most || sigma > most {
 		return &Refusal{Unusable, fmt.Sprintf("sensor %q: %s: %.0f m with a sigma of %.0f m in %.3f s is beyond %d times the suite's max_speed_mps, %g: check its unit, leave out what tells nothing, or raise max_speed_mps",
-			ev.Sensor, ev.Measurement.Kind(), d, sigma, span, tooFast, s.suite.Vehicle.MaxSpeedMPS)}
+			ev.Sensor, ev.Measurement.Kind(), d, sigma, span, TooFast, s.suite.Vehicle.MaxSpeedMPS)}
 	}
 	if d > tooFarM || sigma > tooFarM {
 		return &Refusal{Unusable, fmt.Sprintf("sensor %q: %s: %.0f m with a sigma of %.0f m is beyond %.0f km, farther than any map reaches: check its unit, or leave out what tells nothing",

@@ -61,7 +61,7 @@ func PolygonFromGeoJSON(text []byte) (*leadlinev1.Polygon, error) {
 		}
 	}
 	p := FromPolygon(area)
-	if _, err := Polygon(p); err != nil {
+	if _, err := Area(p); err != nil {
 		return nil, err
 	}
 	return p, nil

@@ -40,7 +40,7 @@ func FromPosition(p geo.LonLat) *leadlinev1.Position {
 }
 
 // Polygon converts an area: one ring at least, three points a ring, MaxPoints
-// in all, which do not cross themselves or each other.
+// in all. They may cross, as in what was taken earlier: see Area.
 func Polygon(m *leadlinev1.Polygon) ([][]geo.LonLat, error) {
 	if len(m.GetRings()) == 0 {
 		return nil, fmt.Errorf("no ring: give the outside as rings[0].points")
@@ -64,6 +64,16 @@ func Polygon(m *leadlinev1.Polygon) ([][]geo.LonLat, error) {
 				return nil, fmt.Errorf("rings[%d].points[%d]: %w", i, j, err)
 			}
 		}
+	}
+	return rings, nil
+}
+
+// Area is Polygon of one of which the probability inside is asked: its rings must not
+// cross themselves or each other.
+func Area(m *leadlinev1.Polygon) ([][]geo.LonLat, error) {
+	rings, err := Polygon(m)
+	if err != nil {
+		return nil, err
 	}
 	return rings, simple(rings)
 }

@@ -41,7 +41,10 @@ func TestCrossing(t *testing.T) {
 		"a hole that crosses":         {[][]geo.LonLat{box, ring(4.99, 52.05, 5.02, 52.06, 5.02, 52.04)}, "rings[1]"},
 		"touching itself":             {[][]geo.LonLat{ring(0, 0, 2, 0, 2, 2, 1, 0, 0, 2)}, ""},
 	} {
-		rings, err := Polygon(FromPolygon(c.rings))
+		if _, err := Polygon(FromPolygon(c.rings)); err != nil { // a journal or a drive file may hold it
+			t.Errorf("%s, as part of what was taken: %v", name, err)
+		}
+		rings, err := Area(FromPolygon(c.rings))
 		switch {
 		case c.edges == "" && err != nil:
 			t.Errorf("%s: %v", name, err)

@@ -57,15 +57,6 @@ func random(rng *rand.Rand, z sensor.Measurement) sensor.Measurement {
 			*x = sensor.Time(rng.Int64N(math.MaxInt64/2) - math.MaxInt64/4)
 		case *geo.LonLat:
 			*x = geo.FromDegrees(360*rng.Float64()-180, 180*rng.Float64()-90)
-		case *[][]geo.LonLat: // rings that do not cross: stars about a point, far from each other
-			for r, ring := range *x {
-				lon, lat := 340*rng.Float64()-170, float64(80*r)-60+20*rng.Float64()
-				for i := range ring {
-					d := geo.Direction(2 * math.Pi * (float64(i) + 0.9*rng.Float64()) / float64(len(ring)))
-					far := 1 + 8*rng.Float64()
-					ring[i] = geo.FromDegrees(lon+far*d.E, lat+far*d.N)
-				}
-			}
 		case *sensor.Beacon:
 			if x.ID == "" {
 				fill(v.FieldByName("Position"))

@@ -12,7 +12,6 @@ import (
 	"sync"
 	"time"
 
-	"github.com/nats-io/nats.go"
 	"github.com/nats-io/nats.go/jetstream"
 )
 
@@ -302,14 +301,6 @@ func (s *Share) renew(ctx context.Context) error {
 		s.news()
 	}
 	return nil
-}
-
-// Passing reports whether an error is that a broker does not answer, or has no leader
-// for what was asked, which may be over soon.
-func Passing(err error) bool {
-	var api *jetstream.APIError
-	return errors.Is(err, nats.ErrNoResponders) || errors.Is(err, jetstream.ErrNoStreamResponse) || errors.Is(err, context.DeadlineExceeded) || errors.Is(err, nats.ErrTimeout) ||
-		errors.As(err, &api) && api.Code == 503
 }
 
 func wrongRevision(err error) bool {
