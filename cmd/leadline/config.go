@@ -41,7 +41,7 @@ func settable(c *cobra.Command, flags ...string) {
 
 // takeSettings makes all commands under a root take their settings.
 func takeSettings(root *cobra.Command) {
-	root.PersistentFlags().String("config", "", "YAML file of settings; see the README")
+	root.PersistentFlags().String("config", "", "YAML file of settings; see docs/server.md")
 	root.PersistentPreRunE = func(c *cobra.Command, _ []string) error { return configure(c) }
 }
 

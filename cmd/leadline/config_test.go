@@ -133,16 +133,16 @@ func TestUnknownVariables(t *testing.T) {
 	}
 }
 
-// TestReadmeSettings: the README has the table of all settings as the code has
+// TestPagesSettings: docs/server.md has the table of all settings as the code has
 // them, and its example of a file is one.
-func TestReadmeSettings(t *testing.T) {
-	page := readPage(t, "README.md")
+func TestPagesSettings(t *testing.T) {
+	page := readPage(t, "docs/server.md")
 	if table := optionsTable(newRoot()); !strings.Contains(page, "\n"+table) {
-		t.Errorf("README.md does not hold this table of settings:\n%s", table)
+		t.Errorf("docs/server.md does not hold this table of settings:\n%s", table)
 	}
 	_, example, found := strings.Cut(page, "\n```yml\n")
 	example, _, _ = strings.Cut(example, "```")
-	if values, err := settings.Parse("README.md", []byte(example), optionKeys(newRoot())); !found || err != nil || len(values) < 3 {
-		t.Errorf("README.md's file of settings: %v, %v", values, err)
+	if values, err := settings.Parse("docs/server.md", []byte(example), optionKeys(newRoot())); !found || err != nil || len(values) < 3 {
+		t.Errorf("docs/server.md's file of settings: %v, %v", values, err)
 	}
 }

@@ -1,5 +1,5 @@
 // Command leadline compiles maps, replays drives over them, serves positions
-// and asks for them. See the README for its commands.
+// and asks for them. See docs/commands.md for its commands.
 package main
 
 import (

@@ -48,7 +48,7 @@ func yamlText(s string) string {
 	return string(b)
 }
 
-// optionsTable is the README's table of all settings.
+// optionsTable is the table of all settings in docs/server.md.
 func optionsTable(root *cobra.Command) string {
 	type row struct{ flags, def, meaning string }
 	rows := map[string]*row{}

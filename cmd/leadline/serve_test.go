@@ -36,8 +36,8 @@ func TestServeLogs(t *testing.T) {
 	for message, key := range map[string]string{
 		"serving": "version", "drive opened": "vehicle", "first located": "vehicle", "drive ended": "vehicle", "stopping": "signal", "stopped": "msg",
 	} {
-		if !strings.Contains(readPage(t, "README.md"), "`"+message+"`") {
-			t.Errorf("README.md does not say what %q is", message)
+		if !strings.Contains(readPage(t, "docs/server.md"), "`"+message+"`") {
+			t.Errorf("docs/server.md does not say what %q is", message)
 		}
 		if e := said[message]; e == nil || e[key] == nil {
 			t.Errorf("the log has no %q with %q:\n%s", message, key, srv.log)

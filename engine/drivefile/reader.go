@@ -198,7 +198,7 @@ func plain(err error) error {
 func advice(said string) string {
 	switch {
 	case strings.HasPrefix(said, "unknown field"):
-		return ": the README names those of a record, and under Measurement kinds those of each kind"
+		return ": docs/drives.md names those of a record, and under Measurement kinds those of each kind"
 	case strings.HasPrefix(said, "invalid google.protobuf.Timestamp"):
 		return ": give a time of RFC 3339, such as 2030-05-01T12:00:00.5Z"
 	case strings.HasPrefix(said, "error parsing"): // of a oneof

@@ -111,7 +111,7 @@ var defaultMissing = []string{"NaN", "nan", "NA", "N/A", "null", "-"}
 // that is wrong is an error with its line.
 func ParseColumns(name string, text []byte) (*Columns, error) {
 	c := &Columns{}
-	y, err := sensor.ParseYAML("column file", name, text, c, "the README's chapter on logs of your own")
+	y, err := sensor.ParseYAML("column file", name, text, c, "docs/drives.md under Logs of your own")
 	if err != nil {
 		return nil, err
 	}

@@ -17,7 +17,7 @@ func TestColumnFileErrors(t *testing.T) {
 		want []string
 	}{
 		{"", []string{"time: give column", "time.format: it is missing", "sensors: there are none"}},
-		{"tim: 1\n", []string{"c.yaml:1:", "tim", "README"}},
+		{"tim: 1\n", []string{"c.yaml:1:", "tim", "docs/drives.md"}},
 		{head + "- {kind: odometer}\n", []string{"c.yaml:3:", "no kind of measurement", "travel"}},
 		{head + "- {kind: truth}\n", []string{"c.yaml:3:", "no kind"}},
 		{head + "- {kind: travel}\n", []string{"c.yaml:3:", "distance_m is missing"}},

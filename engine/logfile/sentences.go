@@ -113,7 +113,7 @@ const (
 // that is wrong is an error with its line.
 func ParseSentences(name string, text []byte) (*Sentences, error) {
 	o := &Sentences{}
-	y, err := sensor.ParseYAML("sentences file", name, text, o, "the README's chapter on logs of your own")
+	y, err := sensor.ParseYAML("sentences file", name, text, o, "docs/drives.md under Logs of your own")
 	if err != nil {
 		return nil, err
 	}

@@ -24,7 +24,7 @@ type rule struct {
 }
 
 // rules is the table of who may do what; a call that is not in it is nobody's.
-// The README has the same table, and a test compares each of its cells with
+// docs/server.md has the same table, and a test compares each of its cells with
 // what a server does. An administrator reads no positions: nothing of what one
 // does needs them.
 var rules = map[string]rule{
@@ -131,7 +131,7 @@ func allows(method string, c *identity.Caller, message any) error {
 		}
 		return nil
 	}
-	return refuse(leadlinev1.Reason_REASON_NOT_ALLOWED, where, "%s is not for %s: see the table of roles in the README", clip(method), roles(c))
+	return refuse(leadlinev1.Reason_REASON_NOT_ALLOWED, where, "%s is not for %s: see the table of roles in docs/server.md", clip(method), roles(c))
 }
 
 func roles(c *identity.Caller) string {

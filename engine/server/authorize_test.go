@@ -32,17 +32,17 @@ import (
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
-// permitted is the README's table of who may do what: for each call, a word for
+// permitted is the table of docs/server.md of who may do what: for each call, a word for
 // each role.
 func permitted(t *testing.T) map[string]map[identity.Role]string {
 	t.Helper()
-	text, err := os.ReadFile("../../README.md")
+	text, err := os.ReadFile("../../docs/server.md")
 	if err != nil {
 		t.Fatal(err)
 	}
 	_, chapter, ok := strings.Cut(string(text), "\n## Who may do what\n")
 	if !ok {
-		t.Fatal("README.md has no chapter on who may do what")
+		t.Fatal("docs/server.md has no chapter on who may do what")
 	}
 	chapter, _, _ = strings.Cut(chapter, "\n## ")
 	var head []string
@@ -221,7 +221,7 @@ func tokenServer(t *testing.T, cfg Config) (conn *grpc.ClientConn, token maker) 
 
 // TestAuthorization tries every call of the API's services in every role, for
 // the caller's own vehicle, for another and for all, over gRPC and by JSON over
-// HTTP, and compares with the README's table; and each with no token, one that
+// HTTP, and compares with the table of docs/server.md; and each with no token, one that
 // has expired and one of another issuer. A call that is new has no row there, and
 // fails.
 func TestAuthorization(t *testing.T) {
@@ -263,7 +263,7 @@ func TestAuthorization(t *testing.T) {
 			m := services.Get(i).Methods().Get(j)
 			row, ok := table[string(m.Name())]
 			if !ok {
-				t.Errorf("%s has no row in the README's table of who may do what", m.FullName())
+				t.Errorf("%s has no row in the table of docs/server.md of who may do what", m.FullName())
 				continue
 			}
 			delete(table, string(m.Name()))
@@ -295,7 +295,7 @@ func TestAuthorization(t *testing.T) {
 		}
 	}
 	for name := range table {
-		t.Errorf("the README's table has a row for %s, which is no call", name)
+		t.Errorf("the table of docs/server.md has a row for %s, which is no call", name)
 	}
 	if methods < 10 || tried < 30*methods {
 		t.Errorf("%d calls of %d methods were tried", tried, methods)

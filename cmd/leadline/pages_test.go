@@ -1,9 +1,6 @@
 package main
 
 import (
-	"go/parser"
-	"go/token"
-	"io/fs"
 	"os"
 	"path/filepath"
 	"reflect"
@@ -35,6 +32,21 @@ func readPage(t *testing.T, name string) string {
 	return string(text)
 }
 
+// readPages is what the README and the pages of docs say to users, one after the
+// other.
+func readPages(t *testing.T) string {
+	t.Helper()
+	out := readPage(t, "README.md")
+	names, err := filepath.Glob(filepath.Join(checkout, "docs", "*.md"))
+	if err != nil || len(names) == 0 {
+		t.Fatalf("no pages: %v", err)
+	}
+	for _, name := range names {
+		out += "\n" + readPage(t, filepath.Join("docs", filepath.Base(name)))
+	}
+	return out
+}
+
 // code matches what a page sets as code, in a line or a block.
 var code = regexp.MustCompile("(?s)```.*?```|`[^`\n]+`")
 
@@ -54,7 +66,7 @@ func chapter(t *testing.T, page, heading string) string {
 	t.Helper()
 	_, rest, ok := strings.Cut(page, "\n## "+heading+"\n")
 	if !ok {
-		t.Fatalf("README.md has no chapter %q", heading)
+		t.Fatalf("there is no chapter %q", heading)
 	}
 	body, _, _ := strings.Cut(rest, "\n## ")
 	return body
@@ -68,7 +80,7 @@ func wantWords(t *testing.T, page, what string, names []string) {
 	words := codeWords(page)
 	for _, n := range names {
 		if !words[n] {
-			t.Errorf("README.md does not name the %s `%s`", what, n)
+			t.Errorf("the pages do not name the %s `%s`", what, n)
 		}
 	}
 }
@@ -89,14 +101,13 @@ func flagNames(c *cobra.Command) (names []string) {
 	return names
 }
 
-// TestReadmeCommands: every command and flag is in the README under its own
-// command's heading, and every flag there exists.
-func TestReadmeCommands(t *testing.T) {
-	page := readPage(t, "README.md")
+// TestPagesCommands: every command and flag is in docs/commands.md under its own
+// command's heading, every flag that a page names exists, and the README's table has
+// every command.
+func TestPagesCommands(t *testing.T) {
 	sections := map[string]string{}
-	for _, s := range strings.Split(page, "\n### ")[1:] {
+	for _, s := range strings.Split(readPage(t, "docs/commands.md"), "\n## ")[1:] {
 		heading, body, _ := strings.Cut(s, "\n")
-		body, _, _ = strings.Cut(body, "\n## ")
 		for _, name := range regexp.MustCompile("`leadline ([^`]*)`").FindAllStringSubmatch(heading, -1) {
 			// The name without arguments: lower-case words up to the first other.
 			var plain []string
@@ -109,6 +120,7 @@ func TestReadmeCommands(t *testing.T) {
 			sections[strings.Join(plain, " ")] = heading + "\n" + body
 		}
 	}
+	table := chapter(t, readPage(t, "README.md"), "Where to read on")
 	anyFlag := map[string]bool{"help": true, "version": true, "config": true}
 	commands(newRoot(), func(c *cobra.Command) {
 		for _, f := range flagNames(c) {
@@ -120,23 +132,26 @@ func TestReadmeCommands(t *testing.T) {
 		name := strings.TrimPrefix(c.CommandPath(), "leadline ")
 		section, ok := sections[name]
 		if !ok {
-			t.Errorf("README.md has no heading for `leadline %s`", name)
+			t.Errorf("docs/commands.md has no heading for `leadline %s`", name)
 			return
 		}
 		delete(sections, name)
+		if !strings.Contains(table, "`"+name+"`") {
+			t.Errorf("README.md's table of commands has no `%s`", name)
+		}
 		for _, f := range flagNames(c) {
 			if f != "help" && !strings.Contains(section, "`--"+f+"`") && !strings.Contains(section, "`--"+f+" ") {
-				t.Errorf("README.md does not say under `leadline %s` what --%s does", name, f)
+				t.Errorf("docs/commands.md does not say under `leadline %s` what --%s does", name, f)
 			}
 		}
 	})
 	for name := range sections {
-		t.Errorf("README.md describes `leadline %s`, which does not exist", name)
+		t.Errorf("docs/commands.md describes `leadline %s`, which does not exist", name)
 	}
-	for _, c := range code.FindAllString(page, -1) {
+	for _, c := range code.FindAllString(readPages(t), -1) {
 		for _, m := range regexp.MustCompile(`(?:^|[\s\x60])--([a-z][a-z0-9-]*)`).FindAllStringSubmatch(c, -1) {
 			if !anyFlag[m[1]] {
-				t.Errorf("README.md names --%s, which no command has", m[1])
+				t.Errorf("a page names --%s, which no command has", m[1])
 			}
 		}
 	}
@@ -178,27 +193,27 @@ func keys(typ reflect.Type, tag string) (names []string) {
 	return names
 }
 
-// TestReadmeNames: the reference names every kind of measurement with its
+// TestPagesNames: the reference names every kind of measurement with its
 // fields, every field of a drive record, a posterior and a score, and every key of
 // a suite, each in its chapter, every status, every reason and every starter.
-func TestReadmeNames(t *testing.T) {
-	page := readPage(t, "README.md")
+func TestPagesNames(t *testing.T) {
+	page := readPages(t)
 	seen := map[protoreflect.FullName]bool{}
-	wantWords(t, chapter(t, page, "Drive files"), "field of a drive file", fieldNames((&leadlinev1.DriveRecord{}).ProtoReflect().Descriptor(), seen))
+	wantWords(t, chapter(t, readPage(t, "docs/drives.md"), "Drive files"), "field of a drive file", fieldNames((&leadlinev1.DriveRecord{}).ProtoReflect().Descriptor(), seen))
 	clear(seen)
-	wantWords(t, chapter(t, page, "The posterior"), "field of a posterior", fieldNames((&leadlinev1.Posterior{}).ProtoReflect().Descriptor(), seen))
+	wantWords(t, chapter(t, readPage(t, "docs/results.md"), "The posterior"), "field of a posterior", fieldNames((&leadlinev1.Posterior{}).ProtoReflect().Descriptor(), seen))
 	wantWords(t, page, "kind of measurement", sensor.Kinds())
-	wantWords(t, chapter(t, page, "Suites"), "key of a suite", keys(reflect.TypeFor[sensor.Suite](), "yaml"))
+	wantWords(t, readPage(t, "docs/suites.md"), "key of a suite", keys(reflect.TypeFor[sensor.Suite](), "yaml"))
 	wantWords(t, page, "nuisance", sensor.NuisanceNames())
 	wantWords(t, page, "starter suite", sensor.StarterNames())
 	for _, s := range []summary.Status{summary.Contradicted, summary.OffMap, summary.Located, summary.Ambiguous, summary.Unsure} {
 		if !strings.Contains(page, "`"+s.String()+"`:") {
-			t.Errorf("README.md does not explain the status `%s`", s)
+			t.Errorf("the pages do not explain the status `%s`", s)
 		}
 	}
 	for _, r := range []session.Reason{session.Unusable, session.TooLate, session.TooEarly, session.Conflicting, session.WrongSpace, session.Overfull} {
 		if !strings.Contains(strings.Join(strings.Fields(page), " "), "`"+string(r)+"`") {
-			t.Errorf("README.md does not explain the reason `%s`", r)
+			t.Errorf("the pages do not explain the reason `%s`", r)
 		}
 	}
 	for _, r := range leadlinev1.Reason_name {
@@ -213,10 +228,10 @@ func TestReadmeNames(t *testing.T) {
 	wantWords(t, page, "field of score.json", figures)
 }
 
-// TestReadmeDefaults: the defaults that the README states are those of a suite
+// TestPagesDefaults: the defaults that the pages state are those of a suite
 // without any figure.
-func TestReadmeDefaults(t *testing.T) {
-	page := readPage(t, "README.md")
+func TestPagesDefaults(t *testing.T) {
+	page := readPages(t)
 	roads, plane := sensor.Default(1).Vehicle, sensor.Default(2).Vehicle
 	number := func(v float64) string { return strconv.FormatFloat(v, 'g', -1, 64) }
 	for _, c := range []struct{ key, says string }{
@@ -231,27 +246,26 @@ func TestReadmeDefaults(t *testing.T) {
 		{"integrity_risk", "| 1e-4 on roads, 1e-7 on a plane |"},
 	} {
 		if !regexp.MustCompile("(?m)^\\| `" + c.key + "`.*" + regexp.QuoteMeta(c.says) + "$").MatchString(page) {
-			t.Errorf("README.md does not say of %s: %s", c.key, c.says)
+			t.Errorf("the pages do not say of %s: %s", c.key, c.says)
 		}
 	}
 	if roads.IntegrityRisk != 1e-4 || plane.IntegrityRisk != 1e-7 {
-		t.Errorf("the integrity risk is %v and %v unless said; README.md says 1e-4 and 1e-7", roads.IntegrityRisk, plane.IntegrityRisk)
+		t.Errorf("the integrity risk is %v and %v unless said; the pages say 1e-4 and 1e-7", roads.IntegrityRisk, plane.IntegrityRisk)
 	}
 }
 
-// TestReadmeExamples: the drive and the suite in the README, and the drive
+// TestPagesExamples: the drive in the README, the suite of docs/suites.md, and the drive
 // that its commands replay, are valid.
-func TestReadmeExamples(t *testing.T) {
-	page := readPage(t, "README.md")
-	block := func(language string) string {
-		_, rest, ok := strings.Cut(page, "\n```"+language+"\n")
+func TestPagesExamples(t *testing.T) {
+	block := func(name, language string) string {
+		_, rest, ok := strings.Cut(readPage(t, name), "\n```"+language+"\n")
 		if !ok {
-			t.Fatalf("README.md has no %s example", language)
+			t.Fatalf("%s has no %s example", name, language)
 		}
 		text, _, _ := strings.Cut(rest, "```")
 		return text
 	}
-	d, err := drivefile.ReadAll(strings.NewReader(block("json")), "README.md")
+	d, err := drivefile.ReadAll(strings.NewReader(block("README.md", "json")), "README.md")
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -261,11 +275,11 @@ func TestReadmeExamples(t *testing.T) {
 			t.Error(err)
 		}
 	}
-	if _, err := sensor.ParseSuite("README.md", []byte(block("yaml"))); err != nil {
+	if _, err := sensor.ParseSuite("docs/suites.md", []byte(block("docs/suites.md", "yaml"))); err != nil {
 		t.Error(err)
 	}
 	whole := readPage(t, "docs/first.drive.jsonl")
-	for line := range strings.Lines(block("json")) {
+	for line := range strings.Lines(block("README.md", "json")) {
 		if !strings.Contains(whole, line) {
 			t.Errorf("docs/first.drive.jsonl does not hold %s", line)
 		}
@@ -305,81 +319,5 @@ func TestReadmeCommandLines(t *testing.T) {
 	}
 	if ran < 6 {
 		t.Errorf("README.md has only %d commands to run", ran)
-	}
-}
-
-// TestDevelopersMap: DEVELOPERS.md names every package of ours and every
-// module that our code or tests import, and every test that it names exists.
-func TestDevelopersMap(t *testing.T) {
-	page := readPage(t, "DEVELOPERS.md")
-	var modules []string
-	for line := range strings.Lines(readPage(t, "go.mod")) {
-		if f := strings.Fields(line); len(f) >= 2 && strings.HasPrefix(f[1], "v") && strings.Contains(f[0], ".") {
-			modules = append(modules, f[0])
-		}
-	}
-	used, tests := map[string]bool{}, map[string]bool{}
-	test := regexp.MustCompile(`(?m)^func (Test[A-Za-z0-9_]+)\(`)
-	err := filepath.WalkDir(checkout, func(file string, e fs.DirEntry, err error) error {
-		if err != nil {
-			return err
-		}
-		if e.IsDir() {
-			if name := e.Name(); name == "build" || name == "testdata" || name == "node_modules" || len(name) > 2 && strings.HasPrefix(name, ".") {
-				return fs.SkipDir
-			}
-			return nil
-		}
-		if !strings.HasSuffix(file, ".go") {
-			return nil
-		}
-		below, err := filepath.Rel(checkout, filepath.Dir(file))
-		if err != nil {
-			return err
-		}
-		used[filepath.ToSlash(below)] = true
-		text, err := os.ReadFile(file)
-		if err != nil {
-			return err
-		}
-		for _, m := range test.FindAllSubmatch(text, -1) {
-			tests[string(m[1])] = true
-		}
-		parsed, err := parser.ParseFile(token.NewFileSet(), file, text, parser.ImportsOnly)
-		if err != nil {
-			return err
-		}
-		for _, spec := range parsed.Imports {
-			imported := strings.Trim(spec.Path.Value, `"`)
-			longest := ""
-			for _, m := range modules {
-				if (imported == m || strings.HasPrefix(imported, m+"/")) && len(m) > len(longest) {
-					longest = m
-				}
-			}
-			if longest != "" {
-				used[longest] = true
-			}
-		}
-		return nil
-	})
-	if err != nil {
-		t.Fatal(err)
-	}
-	if len(used) < 30 {
-		t.Fatalf("only %d packages and modules were found", len(used))
-	}
-	for name := range used {
-		if name == "." {
-			continue
-		}
-		if !strings.Contains(page, "`"+name+"`") {
-			t.Errorf("DEVELOPERS.md does not name `%s`", name)
-		}
-	}
-	for _, m := range regexp.MustCompile("`(Test[A-Za-z0-9_]+)`").FindAllStringSubmatch(page, -1) {
-		if !tests[m[1]] {
-			t.Errorf("DEVELOPERS.md names %s, which does not exist", m[1])
-		}
 	}
 }

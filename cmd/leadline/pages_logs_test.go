@@ -9,14 +9,10 @@ import (
 	"leadline/engine/logfile"
 )
 
-// TestReadmeLogs: the chapter on logs names every key of both files, and its
+// TestPagesLogs: the chapter on logs names every key of both files, and its
 // examples, units and formats of times are taken.
-func TestReadmeLogs(t *testing.T) {
-	_, chapter, ok := strings.Cut(readPage(t, "README.md"), "\n## Logs of your own\n")
-	if !ok {
-		t.Fatal("README.md has no chapter on logs of your own")
-	}
-	chapter, _, _ = strings.Cut(chapter, "\n## ")
+func TestPagesLogs(t *testing.T) {
+	chapter := chapter(t, readPage(t, "docs/drives.md"), "Logs of your own")
 	wantWords(t, chapter, "key of a column file", keys(reflect.TypeFor[logfile.Columns](), "yaml"))
 	wantWords(t, chapter, "key of a field", keys(reflect.TypeFor[logfile.Field](), "yaml"))
 	wantWords(t, chapter, "key of a sentences file", keys(reflect.TypeFor[logfile.Sentences](), "yaml"))
@@ -25,10 +21,10 @@ func TestReadmeLogs(t *testing.T) {
 	if len(blocks) != 2 {
 		t.Fatalf("%d examples", len(blocks))
 	}
-	if _, err := logfile.ParseColumns("README.md", []byte(blocks[0][1])); err != nil {
+	if _, err := logfile.ParseColumns("docs/drives.md", []byte(blocks[0][1])); err != nil {
 		t.Error(err)
 	}
-	if _, err := logfile.ParseSentences("README.md", []byte(blocks[1][1])); err != nil {
+	if _, err := logfile.ParseSentences("docs/drives.md", []byte(blocks[1][1])); err != nil {
 		t.Error(err)
 	}
 
@@ -37,7 +33,7 @@ func TestReadmeLogs(t *testing.T) {
 		_, text, _ := strings.Cut(chapter, from)
 		text, _, ok := strings.Cut(text, to)
 		if !ok {
-			t.Fatalf("README.md has no %q followed by %q", from, to)
+			t.Fatalf("docs/drives.md has no %q followed by %q", from, to)
 		}
 		for _, m := range ticked.FindAllStringSubmatch(text, -1) {
 			names = append(names, m[1])
@@ -57,12 +53,12 @@ func TestReadmeLogs(t *testing.T) {
 	}
 	for _, f := range []string{"rfc3339", "unix_s", "unix_ms", "unix_us", "unix_ns", "since_s", "since_ms", "layout"} {
 		if !strings.Contains(strings.Join(between("**Times.**", "**A sensor**"), " "), f) {
-			t.Errorf("README.md does not name the format %s", f)
+			t.Errorf("docs/drives.md does not name the format %s", f)
 		}
 	}
 	for _, s := range []string{"DPT", "DBT", "HDT", "HDG", "HDM", "VHW", "ROT", "VBW", "VTG", "RMC", "GGA", "GLL", "ZDA"} {
 		if !strings.Contains(chapter, s) {
-			t.Errorf("README.md does not name %s", s)
+			t.Errorf("docs/drives.md does not name %s", s)
 		}
 	}
 }

@@ -11,13 +11,10 @@ import (
 	"leadline/engine/wire"
 )
 
-// TestReadmePrograms runs the programs of the README's chapter on connecting
-// one's own as they stand, but for the server's address.
-func TestReadmePrograms(t *testing.T) {
+// TestPagesPrograms runs the programs of docs/programs.md as they stand, but for the server's address.
+func TestPagesPrograms(t *testing.T) {
 	t.Parallel()
-	page := readPage(t, "README.md")
-	_, page, _ = strings.Cut(page, "\n## Connect your own programs")
-	page, _, _ = strings.Cut(page, "\n## ")
+	page := readPage(t, "docs/programs.md")
 	mapPath := filepath.Join(t.TempDir(), "quillmere.roads.arrow")
 	good(t, "map", "roads", checkout+"/fixtures/roads/quillmere.geojson", "-o", mapPath)
 	srv := serveMaps(t, "--map", mapPath)
@@ -52,7 +49,7 @@ func TestReadmePrograms(t *testing.T) {
 			t.Parallel()
 			blocks := strings.Split(page, "\n```"+language+"\n")
 			if len(blocks) != 2 {
-				t.Fatalf("README.md has %d programs in %s there, want 1", len(blocks)-1, language)
+				t.Fatalf("docs/programs.md has %d programs in %s there, want 1", len(blocks)-1, language)
 			}
 			code, _, _ := strings.Cut(blocks[1], "```")
 			if !strings.Contains(code, defaultAddress) {
@@ -66,22 +63,22 @@ func TestReadmePrograms(t *testing.T) {
 	}
 }
 
-// TestReadmeSighting posts the README's sighting as it stands, but for the server's
+// TestPagesSighting posts the sighting of the pages as it stands, but for the server's
 // address, of a vehicle whose drive goes on: it is entered; on a road that the map does
 // not have it is refused with an answer all the same.
-func TestReadmeSighting(t *testing.T) {
+func TestPagesSighting(t *testing.T) {
 	t.Parallel()
 	if _, err := exec.LookPath("curl"); err != nil {
 		t.Skip("curl is not installed")
 	}
 	var code string
-	for _, block := range strings.Split(readPage(t, "README.md"), "\n```sh\n") {
+	for _, block := range strings.Split(readPages(t), "\n```sh\n") {
 		if block, _, _ := strings.Cut(block, "```"); strings.Contains(block, "/AddSighting") {
 			code = block
 		}
 	}
 	if code == "" {
-		t.Fatal("README.md has no request of AddSighting")
+		t.Fatal("the pages have no request of AddSighting")
 	}
 	mapPath := filepath.Join(t.TempDir(), "quillmere.roads.arrow")
 	good(t, "map", "roads", checkout+"/fixtures/roads/quillmere.geojson", "-o", mapPath)
