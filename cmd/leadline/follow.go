@@ -7,6 +7,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"slices"
 	"strings"
 	"time"
 
@@ -23,6 +24,7 @@ type followOptions struct {
 	reach
 	area, detail    string
 	asJSON, changes bool
+	alarms          bool
 	interval        time.Duration
 	inside          float64
 	regions         []float64
@@ -52,6 +54,7 @@ how many. A connection that breaks is taken up again where it was.`,
 	f.BoolVar(&o.asJSON, "json", false, "print each update as JSON, one object a line")
 	f.DurationVar(&o.interval, "interval", 0, "at least this long between two lines of a vehicle; a change of status comes at once")
 	f.BoolVar(&o.changes, "changes", false, "only changes of status")
+	f.BoolVar(&o.alarms, "alarms", false, "alarms, too, with their numbers: those on record first, then each when something about it changes")
 	f.StringVar(&o.area, "area", "", "GeoJSON file with one polygon: only vehicles inside, and when they have left")
 	f.Float64Var(&o.inside, "inside", 5, "percentage from which a vehicle counts as inside --area")
 	f.StringVar(&o.detail, "detail", "summary", "how much --json prints: summary, modes, region or belief")
@@ -62,7 +65,7 @@ how many. A connection that breaks is taken up again where it was.`,
 
 // request makes the request of the flags.
 func (o *followOptions) request(c *cobra.Command, vehicles []string) (*leadlinev1.FollowRequest, error) {
-	req := &leadlinev1.FollowRequest{Vehicles: vehicles, MinIntervalS: o.interval.Seconds(), StatusChangesOnly: o.changes}
+	req := &leadlinev1.FollowRequest{Vehicles: vehicles, MinIntervalS: o.interval.Seconds(), StatusChangesOnly: o.changes, Alarms: o.alarms}
 	var ok bool
 	if req.Detail, ok = details[o.detail]; !ok {
 		return nil, fmt.Errorf("--detail is %q: give summary, modes, region or belief", o.detail)
@@ -119,6 +122,9 @@ func follow(c *cobra.Command, o *followOptions, vehicles []string) error {
 		Request: req,
 		OnUpdate: func(m *leadlinev1.FollowResponse) error {
 			silence.over()
+			if m.GetAlarm() != nil && len(vehicles) > 0 && !slices.Contains(vehicles, m.GetVehicle()) {
+				return nil // the server tells of the alarms of all vehicles
+			}
 			if err := o.print(w, m); err != nil {
 				return err
 			}
@@ -183,6 +189,8 @@ func (o *followOptions) print(w io.Writer, m *leadlinev1.FollowResponse) error {
 			said[i] = t.AsTime().Format(time.RFC3339Nano)
 		}
 		text = "was not as said at " + strings.Join(said, ", ")
+	case m.GetAlarm() != nil:
+		text = recordText(m.GetAlarm())
 	case m.GetFarewell().GetEnded():
 		text = fmt.Sprintf("has ended its drive %s; sha256 %s", m.GetDrive(), m.GetFarewell().GetPosteriorSha256())
 	default:

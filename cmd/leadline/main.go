@@ -61,7 +61,7 @@ Exit status: 0 done, 1 the answer is a failure, 2 wrong use or bad input.`,
 	}
 	root.SetVersionTemplate("leadline {{.Version}}\n")
 	root.SetFlagErrorFunc(flagError)
-	root.AddCommand(mapCommand(), importCommand(), replayCommand(), workCommand(), compareCommand(), reportCommand(), forecastCommand(), tuneCommand(), serveCommand(), feedCommand(), whereCommand(), followCommand(), vehiclesCommand(), endCommand(), eraseCommand(), journalCommand(), trafficCommand(), demoCommand(), suiteCommand(), versionCommand())
+	root.AddCommand(mapCommand(), importCommand(), replayCommand(), workCommand(), compareCommand(), reportCommand(), forecastCommand(), tuneCommand(), serveCommand(), feedCommand(), whereCommand(), followCommand(), sightingCommand(), seenCommand(), vehiclesCommand(), endCommand(), eraseCommand(), journalCommand(), trafficCommand(), demoCommand(), suiteCommand(), versionCommand())
 	takeSettings(root)
 	helpForWrongArgs(root)
 	return root

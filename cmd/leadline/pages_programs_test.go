@@ -6,18 +6,13 @@ import (
 	"path/filepath"
 	"strings"
 	"testing"
-
-	"leadline/engine/client"
-	"leadline/engine/wire"
 )
 
 // TestPagesPrograms runs the programs of docs/programs.md as they stand, but for the server's address.
 func TestPagesPrograms(t *testing.T) {
 	t.Parallel()
 	page := readPage(t, "docs/programs.md")
-	mapPath := filepath.Join(t.TempDir(), "quillmere.roads.arrow")
-	good(t, "map", "roads", checkout+"/fixtures/roads/quillmere.geojson", "-o", mapPath)
-	srv := serveMaps(t, "--map", mapPath)
+	srv := serveMaps(t, "--map", quillmere(t))
 	good(t, "feed", checkout+"/docs/first.drive.jsonl", "--to", srv.address)
 
 	for language, run := range map[string]func(t *testing.T, code string) *program{
@@ -80,25 +75,8 @@ func TestPagesSighting(t *testing.T) {
 	if code == "" {
 		t.Fatal("the pages have no request of AddSighting")
 	}
-	mapPath := filepath.Join(t.TempDir(), "quillmere.roads.arrow")
-	good(t, "map", "roads", checkout+"/fixtures/roads/quillmere.geojson", "-o", mapPath)
-	srv := serveMaps(t, "--map", mapPath)
-	d, err := readDrive(checkout + "/docs/first.drive.jsonl")
-	if err != nil {
-		t.Fatal(err)
-	}
-	f, err := client.Open(t.Context(), atServer(t, srv), client.Drive{Header: wire.FromHeader(d.Header)})
-	if err != nil {
-		t.Fatal(err)
-	}
-	for _, ev := range d.Events {
-		if err := f.Send(wire.FromEvent(ev)); err != nil {
-			t.Fatal(err)
-		}
-	}
-	if err := f.Leave(); err != nil {
-		t.Fatal(err)
-	}
+	srv := serveMaps(t, "--map", quillmere(t))
+	leaveFirst(t, srv, "van-1")
 	post := func(road string) (text string) {
 		t.Helper()
 		code := strings.ReplaceAll(strings.ReplaceAll(code, defaultAddress, srv.address), "Market Street", road)

@@ -41,7 +41,7 @@ func printPosterior(w io.Writer, p *leadlinev1.Posterior, first ...string) {
 	line := func(label, format string, args ...any) {
 		fmt.Fprintf(w, "  %-14s %s\n", label, fmt.Sprintf(format, args...))
 	}
-	fmt.Fprintf(w, "%s is %s at %s (%s)\n", p.GetVehicle(), words(p.GetStatus().String(), "STATUS_"), p.GetTime().AsTime().Format(time.RFC3339Nano), age(p.GetAgeS()))
+	fmt.Fprintf(w, "%s is %s at %s (%s)\n", oneLine(p.GetVehicle()), words(p.GetStatus().String(), "STATUS_"), p.GetTime().AsTime().Format(time.RFC3339Nano), age(p.GetAgeS()))
 	for _, text := range first {
 		fmt.Fprintf(w, "  %s\n", text)
 	}
