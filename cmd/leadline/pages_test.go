@@ -242,6 +242,7 @@ func TestPagesDefaults(t *testing.T) {
 		{"lateral_sigma_m", "| " + number(roads.LateralSigmaM) + "; roads only |"},
 		{"stretch_m_per_sqrt_m", "| " + number(roads.StretchMPerSqrtM) + "; roads only |"},
 		{"corner_sigma_m", "| " + number(roads.CornerSigmaM) + "; roads only |"},
+		{"keeps_right_m", "| " + number(roads.KeepsRightM) + ": nothing is known of it; roads only |"},
 		{"max_speed_mps", "| " + number(roads.MaxSpeedMPS) + ", " + number(roads.MaxAccelMPS2) + ", " + number(roads.MaxTurnDPS) + " |"},
 		{"integrity_risk", "| 1e-4 on roads, 1e-7 on a plane |"},
 	} {

@@ -73,6 +73,9 @@ func (m *Motion) StepInto(s *filter.Step, qs []filter.Quantity, dim int, frame g
 	var plus [2]float64 // the mean motion in a gap
 	if dim == 1 {
 		covered = m.roadStep(s, b, g, frame, pose, scale)
+		if o := m.Suite.Vehicle.KeepsRightM; o != 0 && heading >= 0 && s.Local == nil {
+			beside(s, o, heading)
+		}
 	} else {
 		covered, err = m.planeStep(s, b, g, frame, pose, qs)
 	}
@@ -114,6 +117,30 @@ func (m *Motion) roadStep(s *filter.Step, b body, g ground, frame geo.Frame, pos
 		s.SetF(0, scale, b.scaled)
 	}
 	return b.covered
+}
+
+// beside has the place along a road's line grow by o times what the heading grows
+// by: a vehicle that keeps o metres right of the line goes o·θ less than the line
+// where that bends right by θ, and so much more where it bends left. With h the
+// heading, x' is replaced by x' + o (h' - h), noise included.
+func beside(s *filter.Step, o float64, h int) {
+	s.Add[0] += o * s.Add[h]
+	k := len(s.Add)
+	if s.F != nil {
+		for j := range k {
+			f := s.F[h*k+j]
+			if j == h {
+				f--
+			}
+			if f != 0 {
+				s.SetF(0, j, s.F[j]+o*f)
+			}
+		}
+	}
+	s.Q[filter.Packed(0, 0)] += float64(2*o*s.Q[filter.Packed(h, 0)]) + float64(o*o*s.Q[filter.Packed(h, h)])
+	for j := 1; j < k; j++ {
+		s.Q[filter.Packed(j, 0)] += o * s.Q[filter.Packed(max(j, h), min(j, h))]
+	}
 }
 
 // mapVar is the variance with which a way driven differs from the way on the

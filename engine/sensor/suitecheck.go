@@ -66,6 +66,7 @@ func (s *Suite) problems() []Finding {
 	f.unless0("vehicle.lateral_sigma_m", v.LateralSigmaM, 1e-3, 100)
 	f.unless0("vehicle.stretch_m_per_sqrt_m", v.StretchMPerSqrtM, 1e-6, 100)
 	f.unless0("vehicle.corner_sigma_m", v.CornerSigmaM, 1e-6, 100)
+	f.within("vehicle.keeps_right_m", v.KeepsRightM, -20, 20)
 	f.unless0("vehicle.max_speed_mps", v.MaxSpeedMPS, 0.01, 1e4)
 	f.unless0("vehicle.max_accel_mps2", v.MaxAccelMPS2, 1e-3, 1e3)
 	f.unless0("vehicle.max_turn_dps", v.MaxTurnDPS, 1e-3, 1e4)

@@ -18,7 +18,7 @@ import (
 //   - Each quantity that is estimated beside the position starts at its prior and
 //     wanders by its drift.
 //   - On roads the way driven differs from the map's by stretch_m_per_sqrt_m and
-//     corner_sigma_m, and the vehicle keeps to a distance from the centreline that is
+//     corner_sigma_m, and at bends by keeps_right_m; the vehicle keeps to a distance from the line that is
 //     normal with lateral_sigma_m and changes over lateralLengthM, smoothly: a
 //     critically damped second-order process along the way. Its heading is off the
 //     road's by the slope of that. The 10° by which the filter lets it differ are
@@ -172,7 +172,7 @@ func (w *world) move(t float64) {
 	forward := ds
 	if w.dim == 1 {
 		v := w.Suite.Vehicle
-		forward += w.normal() * math.Sqrt(v.StretchMPerSqrtM*v.StretchMPerSqrtM*ds+v.CornerSigmaM*v.CornerSigmaM*math.Abs(turn)/(math.Pi/2))
+		forward += w.normal()*math.Sqrt(v.StretchMPerSqrtM*v.StretchMPerSqrtM*ds+v.CornerSigmaM*v.CornerSigmaM*math.Abs(turn)/(math.Pi/2)) - v.KeepsRightM*turn
 		push := w.normal() * 2 * v.LateralSigmaM / lateralLengthM * math.Sqrt(ds/lateralLengthM)
 		wander := w.wander + push - ds/lateralLengthM*(2*w.wander+w.lateralM/lateralLengthM)
 		w.lateralM += ds * wander
