@@ -37,7 +37,7 @@ func clampAlong(s, length float64) float64 {
 	if !(s > 0) {
 		return 0
 	}
-	return math.Min(s, length)
+	return min(s, length)
 }
 
 // findSegment returns the i in [lo, hi-2] with at[i] < s ≤ at[i+1], or lo for
@@ -100,7 +100,7 @@ func (m *Map) sampleHeading(dst *filter.Columns, chart []int32, alongM []float64
 	d := m.d
 	alongM = alongM[:len(chart)]
 	blend := (widthM/2 - NarrowM) / (m.wide - NarrowM)
-	blend = math.Min(math.Max(blend, 0), 1)
+	blend = min(max(blend, 0), 1)
 	last, knot := int32(-1), int32(0)
 	var from, to, station, stationLast int32
 	var s0, h0, slope, perM, length float64

@@ -37,22 +37,39 @@ type Belief struct {
 
 // Clip gives back the memory that the columns have beyond what they hold.
 func (b *Belief) Clip() {
-	clip(&b.Key)
-	clip(&b.Mass)
-	clip(&b.Mean)
-	clip(&b.Cov)
-	clip(&b.Tiles.At)
-	clip(&b.Tiles.Mass)
-	clip(&b.Slices.At)
-	clip(&b.Slices.Rows)
-	clip(&b.Slices.Mass)
+	clip(&b.Key, 2)
+	clip(&b.Mass, 2)
+	clip(&b.Mean, 2)
+	clip(&b.Cov, 2)
+	clip(&b.Tiles.At, 8)
+	clip(&b.Tiles.Mass, 8)
+	clip(&b.Slices.At, 8)
+	clip(&b.Slices.Rows, 8)
+	clip(&b.Slices.Mass, 8)
 }
 
-// clip leaves an eighth more than what there is.
-func clip[T any](column *[]T) {
-	if n := len(*column); cap(*column) > n+n/8+8 {
+// clip leaves a part more than what there is.
+func clip[T any](column *[]T, part int) {
+	if n := len(*column); cap(*column) > n+n/part+8 {
 		*column = append(make([]T, 0, n), *column...)
 	}
+}
+
+// Lodge moves a belief's Gaussians into the memory of room, which then has theirs: where
+// many beliefs are worked on by turns, each has no more than it holds between. Called
+// again, it moves them back.
+func (b *Belief) Lodge(room *Gaussians) {
+	g := &b.Gaussians
+	room.Key, room.Mass = lodge(room.Key, g.Key), lodge(room.Mass, g.Mass)
+	room.Mean, room.Cov = lodge(room.Mean, g.Mean), lodge(room.Cov, g.Cov)
+	*g, *room = *room, *g
+}
+
+func lodge[T any](dst, src []T) []T {
+	if n := len(src); cap(dst) < n {
+		dst = make([]T, 0, n+n/8)
+	}
+	return append(dst[:0], src...)
 }
 
 // Gaussians are the columns of a belief, one entry a Gaussian, in ascending

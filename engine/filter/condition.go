@@ -98,7 +98,7 @@ func (w *noiseWork) condition(g *gaussian, k int, angular uint, t *Terms, i int)
 	for c := range w.parts {
 		l, _ := w.part(c, p, r, t.ExtraOf(i, c))
 		logs[c] = w.logW[c] + l/w.power
-		most = math.Max(most, logs[c])
+		most = max(most, logs[c])
 	}
 	if math.IsInf(most, -1) {
 		return most

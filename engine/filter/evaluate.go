@@ -123,7 +123,7 @@ func (w *noiseWork) density(t *Terms, i int, least float64) float64 {
 	for c := range w.parts {
 		l, _ := w.part(c, w.short(c, p, t.ExtraOf(i, c)), r, t.ExtraOf(i, c))
 		logs[c] = w.logW[c] + l/w.power
-		most = math.Max(most, logs[c])
+		most = max(most, logs[c])
 	}
 	if math.IsInf(most, -1) {
 		return most
@@ -178,7 +178,7 @@ func (w *noiseWork) short(c int, least sym2, extra float64) sym2 {
 // every direction.
 func (s sym2) short(m int, least sym2) sym2 {
 	if m == 1 {
-		return sym2{a: math.Max(0, least.a-s.a)}
+		return sym2{a: max(0, least.a-s.a)}
 	}
 	d := sym2{least.a - s.a, least.b - s.b, least.c - s.c}
 	mid, half := 0.5*(d.a+d.c), 0.5*(d.a-d.c)

@@ -67,7 +67,7 @@ func between(a, b edge) cut {
 		bz = float64(b.z * b.density)
 	}
 	v := 1 + (az-bz)/share - float64(mean*mean)
-	return cut{share, mean, math.Max(v, 0)}
+	return cut{share, mean, max(v, 0)}
 }
 
 // cutting is a Gaussian that is cut along a quantity, with what all pieces share.

@@ -10,12 +10,22 @@ import (
 // into the outermost piece, so that mass, mean and variance stay exact.
 const foldSigmas = 3.5
 
-// lineMove is the memory for moving Gaussians on lines: some that have moved, and where
-// they are cut, in standard deviations, with the standard normal there.
+// lineMove is the memory for moving Gaussians on lines: some that have moved, with what
+// they reach over, and where they are cut, in standard deviations, with the standard
+// normal there.
 type lineMove struct {
-	moved            Gaussians
+	moved            []gaussian
+	reach            []extent
 	z, density, tail []float64
 	work             kernel.EdgeWork
+}
+
+// extent is where a Gaussian is along a chart, its standard deviation, the cells' width,
+// and the first and last cell that it is cut for; the same if it is not cut.
+type extent struct {
+	chart                   int32
+	whole                   bool
+	pos, sigma, first, last float64
 }
 
 // lineRun is how many Gaussians are moved before they are cut.
@@ -24,23 +34,24 @@ const lineRun = 256
 // sendLines is send on lines: for a run of Gaussians after the other, so that the edges at
 // which they are cut are evaluated together.
 func (mv *mover) sendLines(b *Belief, w *Workspace, add []float64) {
-	k, lm, g := mv.k, &mv.line, &mv.g
+	k, lm := mv.k, &mv.line
+	if len(lm.moved) == 0 {
+		lm.moved, lm.reach = make([]gaussian, lineRun), make([]extent, lineRun)
+	}
 	for from := 0; from < len(b.Key); from += lineRun {
 		to := min(from+lineRun, len(b.Key))
-		lm.moved.reset()
 		lm.z = lm.z[:0]
 		for i := from; i < to; i++ {
+			g := &lm.moved[i-from]
 			b.load(g, i, k)
-			mv.advance(w, b.Dim, i, add)
-			lm.moved.push(b.Key[i], k, g)
-			lm.cuts(mv.lines, b.Key[i], g)
+			mv.advance(g, w, b.Dim, i, add)
+			lm.cuts(&lm.reach[i-from], mv.lines, b.Key[i], g)
 		}
 		lm.evaluate()
 		at := 0
 		for i := range to - from {
-			lm.moved.load(g, i, k)
 			mv.index = int32(from + i)
-			at = mv.cut(lm.moved.Key[i], g, at)
+			at = mv.cut(&lm.reach[i], &lm.moved[i], at)
 		}
 	}
 }
@@ -50,29 +61,24 @@ func (mv *mover) sendLines(b *Belief, w *Workspace, add []float64) {
 func (mv *mover) sendLine(key uint64, g *gaussian) {
 	lm := &mv.line
 	lm.z = lm.z[:0]
-	lm.cuts(mv.lines, key, g)
+	var e extent
+	lm.cuts(&e, mv.lines, key, g)
 	lm.evaluate()
-	mv.cut(key, g, 0)
+	mv.cut(&e, g, 0)
 }
 
-// extent is where a Gaussian of a cell is, its standard deviation, and the first and last
-// cell that it is cut for; the same if it is not cut.
-func (ln *Lines) extent(key uint64, g *gaussian) (pos, sigma, first, last float64) {
+// cuts finds what a Gaussian of a cell reaches over, and appends where it is cut.
+func (lm *lineMove) cuts(e *extent, ln *Lines, key uint64, g *gaussian) {
 	chart, cell := LineCell(key)
 	h := ln.WidthM[chart]
-	pos = float64((float64(cell)+0.5)*h) + g.mean[0]
-	if sigma = math.Sqrt(g.cov[0]); sigma <= 0.5*h {
-		return pos, sigma, 0, 0
+	e.chart, e.pos, e.sigma = chart, float64((float64(cell)+0.5)*h)+g.mean[0], math.Sqrt(g.cov[0])
+	e.first, e.last = 0, 0
+	if e.whole = !(e.sigma > 0.5*h); e.whole {
+		return
 	}
-	return pos, sigma, math.Floor((pos - foldSigmas*sigma) / h), math.Floor((pos + foldSigmas*sigma) / h)
-}
-
-// cuts appends where a Gaussian is cut.
-func (lm *lineMove) cuts(ln *Lines, key uint64, g *gaussian) {
-	pos, sigma, first, last := ln.extent(key, g)
-	chart, _ := LineCell(key)
-	for j := first; j < last; j++ {
-		lm.z = append(lm.z, (float64((j+1)*ln.WidthM[chart])-pos)/sigma)
+	e.first, e.last = math.Floor((e.pos-foldSigmas*e.sigma)/h), math.Floor((e.pos+foldSigmas*e.sigma)/h)
+	for j := e.first; j < e.last; j++ {
+		lm.z = append(lm.z, (float64((j+1)*h)-e.pos)/e.sigma)
 	}
 }
 
@@ -84,21 +90,19 @@ func (lm *lineMove) evaluate() {
 
 // cut sends a Gaussian, in pieces if it is wide, of which the edges are from at on; it
 // returns where those of the next one are.
-func (mv *mover) cut(key uint64, g *gaussian, at int) int {
-	pos, sigma, first, last := mv.lines.extent(key, g)
-	chart, _ := LineCell(key)
-	if !(sigma > 0.5*mv.lines.WidthM[chart]) {
+func (mv *mover) cut(e *extent, g *gaussian, at int) int {
+	if e.whole {
 		mv.from[0] = g.mean[0]
-		mv.place(chart, pos, g, g.mass, 0)
+		mv.place(e.chart, e.pos, g, g.mass, 0)
 		return at
 	}
 	lm := &mv.line
 	var whole cutting
 	whole.begin(g, mv.k, 0)
 	left := edge{z: math.Inf(-1)}
-	for j := first; j <= last; j++ {
+	for j := e.first; j <= e.last; j++ {
 		right := edge{z: math.Inf(1)}
-		if j < last {
+		if j < e.last {
 			right = edge{lm.z[at], lm.density[at], lm.tail[at]}
 			at++
 		}
@@ -107,7 +111,7 @@ func (mv *mover) cut(key uint64, g *gaussian, at int) int {
 			// A folded tail may have its mean beyond its cell: it is at home
 			// where its mean is.
 			mv.from[0] = mv.piece.mean[0]
-			mv.place(chart, pos+float64(sigma*c.mean), &mv.piece, mv.piece.mass, 0)
+			mv.place(e.chart, e.pos+float64(e.sigma*c.mean), &mv.piece, mv.piece.mass, 0)
 		}
 		left = right
 	}
@@ -127,7 +131,7 @@ func (mv *mover) place(chart int32, pos float64, g *gaussian, mass float64, dept
 			mv.pruned += mass
 			return
 		}
-		cell := int32(math.Min(math.Max(pos/ln.WidthM[chart], 0), float64(ln.Cells[chart]-1)))
+		cell := int32(min(max(pos/ln.WidthM[chart], 0), float64(ln.Cells[chart]-1)))
 		g.mass = mass
 		g.mean[0] = pos - float64((float64(cell)+0.5)*ln.WidthM[chart])
 		mv.out.push(LineKey(chart, cell), mv.k, g)

@@ -126,7 +126,7 @@ func nearest(groups *[maxPerCell]gaussian, used, most int, g *gaussian, angular 
 		d := 0.0
 		for left := angular; left != 0; left &= left - 1 {
 			q := bits.TrailingZeros(left)
-			d = math.Max(d, math.Abs(geo.WrapPi(g.mean[q]-groups[i].mean[q])))
+			d = max(d, math.Abs(geo.WrapPi(g.mean[q]-groups[i].mean[q])))
 		}
 		if d < least {
 			best, least = i, d

@@ -165,7 +165,7 @@ func (mv *mover) send(b *Belief, w *Workspace) bool {
 	g := &mv.g
 	for i := range b.Key {
 		b.load(g, i, k)
-		mv.advance(w, b.Dim, i, add)
+		mv.advance(g, w, b.Dim, i, add)
 		mv.index = int32(i)
 		mv.plane(b.Lattice, b.Key[i], g, w.tiles.density[i] < mv.faint)
 		if mv.cuts > maxPieces {
@@ -175,14 +175,14 @@ func (mv *mover) send(b *Belief, w *Workspace) bool {
 	return true
 }
 
-// advance moves mv.g, which is Gaussian i, by the step.
-func (mv *mover) advance(w *Workspace, dim, i int, add []float64) {
+// advance moves g, which is Gaussian i, by the step.
+func (mv *mover) advance(g *gaussian, w *Workspace, dim, i int, add []float64) {
 	if k := mv.k; mv.step.Local != nil {
 		copy(mv.stepAdd, w.add[i*dim:(i+1)*dim])
 		copy(mv.stepF, w.f[i*dim*k:(i+1)*dim*k])
 		mv.f.set(k, mv.stepF)
 	}
-	mv.g.advance(&mv.f, add, mv.step.Q)
+	g.advance(&mv.f, add, mv.step.Q)
 }
 
 func resize[T any](s []T, n int) []T {

@@ -42,7 +42,7 @@ type Predictive struct {
 // Score is the normal score Φ⁻¹(Below) of a component: standard normal if the
 // prediction is right. It is within ±38.
 func (p *Predictive) Score(row int) float64 {
-	below, above := math.Max(p.Below[row], 1e-300), math.Max(p.Above[row], 1e-300)
+	below, above := max(p.Below[row], 1e-300), max(p.Above[row], 1e-300)
 	if above < below {
 		return kernel.NormalQuantile(above)
 	}
@@ -260,19 +260,46 @@ func (q *predictions) circle(i int, n *Noise, heaviest float64) (t tails) {
 	t.add(n.FlatWeight, tails{arc / (2 * math.Pi), 1 - arc/(2*math.Pi)})
 	for c, part := range n.Parts {
 		s := math.Sqrt(q.spread(i, c, 1, n).a)
-		var sum tails
-		for turn := -1.0; turn <= 1; turn++ {
-			to := r + turn*2*math.Pi
-			a, z, b := normalTails((to-arc)/s), normalTails(to/s), normalTails((to-arc+2*math.Pi)/s)
-			sum.below += a.between(z)
-			sum.above += z.between(b)
-		}
+		sum := turns(r, arc, s)
 		if whole := sum.below + sum.above; whole > 0 {
 			t.add(part.Weight/whole, sum)
 		}
 	}
 	return t
 }
+
+// turns are the probabilities of a normal distribution around 0 from the cut, arc
+// before r, up to r, and from there to the next cut, summed over the turn between
+// the cuts and one to either side. Turns, and tails beyond cuts, that are too little
+// to change a bit of the sum are not looked at.
+func turns(r, arc, s float64) (sum tails) {
+	first, last := (r-arc)/s, (r-arc+2*math.Pi)/s
+	z := normalTails(r / s)
+	if first < -kernel.QuickEnd && last > kernel.QuickEnd && min(z.below, z.above) > leastBeside {
+		return z
+	}
+	a, b := normalTails(first), normalTails(last)
+	sum = tails{a.between(z), z.between(b)}
+	// The other turns lie beyond the cuts.
+	if first < 0 && last > 0 && max(a.below, b.above) < tooLittle*min(sum.below, sum.above) {
+		return sum
+	}
+	sum = tails{}
+	for turn := -1.0; turn <= 1; turn++ {
+		to := r + turn*2*math.Pi
+		a, z, b := normalTails((to-arc)/s), normalTails(to/s), normalTails((to-arc+2*math.Pi)/s)
+		sum.below += a.between(z)
+		sum.above += z.between(b)
+	}
+	return sum
+}
+
+const (
+	// tooLittle of a sum does not change it by rounding, which takes 2^-54.
+	tooLittle = 0x1p-56
+	// leastBeside is above Q(QuickEnd)/tooLittle = 1.13e-19·2^56.
+	leastBeside = 0.01
+)
 
 // tails are the probabilities on the two sides of a place.
 type tails struct{ below, above float64 }
@@ -306,6 +333,6 @@ func normalTails(z float64) tails {
 
 // uniformTails of a place in a distribution over ±½.
 func uniformTails(x float64) tails {
-	x = math.Max(-0.5, math.Min(0.5, x))
+	x = max(-0.5, min(0.5, x))
 	return tails{0.5 + x, 0.5 - x}
 }

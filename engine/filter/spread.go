@@ -112,7 +112,7 @@ func directions(ee, en, nn float64) (u [3][2]int32, lambda [3]float64, n int) {
 	for k := range 3 {
 		i, j := (k+1)%3, (k+2)%3
 		u[k] = [2]int32{int32(-v[k][1]), int32(v[k][0])}
-		lambda[k] = math.Max(0, -dot(v[i], v[j]))
+		lambda[k] = max(0, -dot(v[i], v[j]))
 	}
 	return pack(u, lambda)
 }
@@ -131,7 +131,7 @@ const (
 // positive semi-definite.
 func spreadable(q [3]float64) (p [3]float64) {
 	if q[1] == 0 {
-		return [3]float64{math.Max(q[0], 0), 0, math.Max(q[2], 0)}
+		return [3]float64{max(q[0], 0), 0, max(q[2], 0)}
 	}
 	mid, half := 0.5*(q[0]+q[2]), 0.5*(q[0]-q[2])
 	r := math.Sqrt(float64(half*half) + float64(q[1]*q[1]))

@@ -44,7 +44,7 @@ func (b *Belief) conditionTempered(nw *noiseWork, w *Workspace) {
 			log := -0.5 * (float64(float64(r*r)*(1/u.variance[s])) + u.log[s])
 			scale := float64((1-nw.power)*(nw.logZ+0.5*u.log[s+n])) - 0.5*nw.logBeta
 			u.over[c*n+i] = nw.logW[c] + (log-nw.logZ+scale)/nw.power
-			most = math.Max(most, u.over[c*n+i])
+			most = max(most, u.over[c*n+i])
 		}
 		u.over[parts*n+i], u.most[i] = nw.logFlat, most
 		for c := range parts + 1 {

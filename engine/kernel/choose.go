@@ -49,3 +49,7 @@ func exps(dst, src []float64) { expsPlain(dst, src, 0) }
 func normalSeries(x []float64) { normalSeriesPlain(x, 0) }
 
 func normalFraction(x []float64) { normalFractionPlain(x, 0) }
+
+func beyond(sum *[4]float64, mass, w2, v, is []float64, r2, excess float64) {
+	beyondPlain(sum, mass, w2, v, is, r2, excess, 0)
+}

@@ -167,3 +167,13 @@ func normalFraction(x []float64) {
 	}
 	normalFractionPlain(x, n)
 }
+
+func beyond(sum *[4]float64, mass, w2, v, is []float64, r2, excess float64) {
+	n := 0
+	if vectors {
+		if n = len(mass) &^ 3; n > 0 {
+			beyondAVX2(&sum[0], &mass[0], &w2[0], &v[0], &is[0], &quick[0].q, n, r2, excess)
+		}
+	}
+	beyondPlain(sum, mass, w2, v, is, r2, excess, n)
+}

@@ -83,3 +83,8 @@ func normalSeriesAVX2(x *float64, n int)
 //
 //go:noescape
 func normalFractionAVX2(x *float64, n int)
+
+// beyondAVX2 is beyondPlain for n values, a multiple of 4.
+//
+//go:noescape
+func beyondAVX2(sum *float64, mass *float64, w2 *float64, v *float64, is *float64, table *float64, n int, r2 float64, excess float64)

@@ -1714,3 +1714,196 @@ DATA fractionSlope<>+8(SB)/8, $0x4075e00000000000
 DATA fractionSlope<>+16(SB)/8, $0x4075e00000000000
 DATA fractionSlope<>+24(SB)/8, $0x4075e00000000000
 GLOBL fractionSlope<>(SB), RODATA|NOPTR, $32
+
+// func beyondAVX2(sum *float64, mass *float64, w2 *float64, v *float64, is *float64, table *float64, n int, r2 float64, excess float64)
+// Requires: AVX
+TEXT ·beyondAVX2(SB), NOSPLIT, $0-72
+	MOVQ         mass+8(FP), AX
+	MOVQ         w2+16(FP), CX
+	MOVQ         v+24(FP), DX
+	MOVQ         is+32(FP), BX
+	MOVQ         table+40(FP), SI
+	VXORPD       Y0, Y0, Y0
+	MOVQ         n+48(FP), DI
+	VBROADCASTSD r2+56(FP), Y1
+	VBROADCASTSD excess+64(FP), Y2
+	MOVQ         sum+0(FP), R8
+	VMOVUPD      (R8), Y3
+	XORQ         R10, R10
+	SHLQ         $0x03, DI
+
+next:
+	CMPQ        R10, DI
+	JGE         done
+	VMOVUPD     Y1, Y4
+	VSUBPD      (CX)(R10*1), Y4, Y4
+	VCMPPD      $0x1e, Y0, Y4, Y5
+	VMAXPD      Y0, Y4, Y4
+	VSQRTPD     Y4, Y4
+	VSUBPD      (DX)(R10*1), Y4, Y6
+	VMULPD      (BX)(R10*1), Y6, Y6
+	VADDPD      (DX)(R10*1), Y4, Y4
+	VMULPD      (BX)(R10*1), Y4, Y4
+	VCMPPD      $0x11, quickEnd<>+0(SB), Y6, Y8
+	VANDPD      Y5, Y8, Y8
+	VMOVMSKPD   Y8, R9
+	VXORPD      Y7, Y7, Y7
+	TESTL       R9, R9
+	JZ          weigh
+	VMULPD      quickSteps<>+0(SB), Y6, Y6
+	VADDPD      quickMiddle<>+0(SB), Y6, Y6
+	VCMPPD      $0x1e, Y0, Y6, Y7
+	VMOVUPD     quickEnds<>+0(SB), Y8
+	VCMPPD      $0x1d, Y8, Y6, Y8
+	VMAXPD      Y0, Y6, Y6
+	VMINPD      quickEnds<>+0(SB), Y6, Y6
+	VCVTTPD2DQY Y6, X9
+	VCVTDQ2PD   X9, Y10
+	VSUBPD      Y10, Y6, Y10
+	VPSLLD      $0x04, X9, X9
+	VPEXTRD     $0x00, X9, R9
+	VMOVUPD     (SI)(R9*1), Y6
+	VPEXTRD     $0x01, X9, R9
+	VMOVUPD     (SI)(R9*1), Y11
+	VPEXTRD     $0x02, X9, R9
+	VMOVUPD     (SI)(R9*1), Y12
+	VPEXTRD     $0x03, X9, R9
+	VMOVUPD     (SI)(R9*1), Y9
+	VUNPCKLPD   Y11, Y6, Y13
+	VUNPCKHPD   Y11, Y6, Y14
+	VUNPCKLPD   Y9, Y12, Y15
+	VUNPCKHPD   Y9, Y12, Y9
+	VPERM2F128  $0x20, Y15, Y13, Y6
+	VPERM2F128  $0x31, Y15, Y13, Y11
+	VPERM2F128  $0x20, Y9, Y14, Y12
+	VPERM2F128  $0x31, Y9, Y14, Y9
+	VMULPD      Y10, Y10, Y13
+	VMULPD      two<>+0(SB), Y10, Y14
+	VMOVUPD     quickThree<>+0(SB), Y15
+	VSUBPD      Y14, Y15, Y14
+	VMULPD      Y14, Y13, Y14
+	VSUBPD      Y6, Y11, Y11
+	VMULPD      Y11, Y14, Y11
+	VADDPD      Y11, Y6, Y6
+	VMOVUPD     one<>+0(SB), Y15
+	VSUBPD      Y10, Y15, Y15
+	VMULPD      Y15, Y15, Y15
+	VMULPD      Y15, Y10, Y15
+	VMULPD      quickWidth<>+0(SB), Y15, Y15
+	VMULPD      Y12, Y15, Y15
+	VSUBPD      Y15, Y6, Y6
+	VSUBPD      one<>+0(SB), Y10, Y15
+	VMULPD      Y15, Y13, Y15
+	VMULPD      quickWidth<>+0(SB), Y15, Y15
+	VMULPD      Y9, Y15, Y15
+	VSUBPD      Y15, Y6, Y6
+	VMOVUPD     one<>+0(SB), Y9
+	VBLENDVPD   Y7, Y6, Y9, Y6
+	VANDNPD     Y6, Y8, Y6
+	VMOVAPD     Y6, Y7
+	VCMPPD      $0x11, quickEnd<>+0(SB), Y4, Y8
+	VMOVMSKPD   Y8, R9
+	TESTL       R9, R9
+	JZ          weigh
+	VMULPD      quickSteps<>+0(SB), Y4, Y4
+	VADDPD      quickMiddle<>+0(SB), Y4, Y4
+	VCMPPD      $0x1e, Y0, Y4, Y6
+	VMOVUPD     quickEnds<>+0(SB), Y8
+	VCMPPD      $0x1d, Y8, Y4, Y8
+	VMAXPD      Y0, Y4, Y4
+	VMINPD      quickEnds<>+0(SB), Y4, Y4
+	VCVTTPD2DQY Y4, X9
+	VCVTDQ2PD   X9, Y10
+	VSUBPD      Y10, Y4, Y10
+	VPSLLD      $0x04, X9, X9
+	VPEXTRD     $0x00, X9, R9
+	VMOVUPD     (SI)(R9*1), Y4
+	VPEXTRD     $0x01, X9, R9
+	VMOVUPD     (SI)(R9*1), Y11
+	VPEXTRD     $0x02, X9, R9
+	VMOVUPD     (SI)(R9*1), Y12
+	VPEXTRD     $0x03, X9, R9
+	VMOVUPD     (SI)(R9*1), Y9
+	VUNPCKLPD   Y11, Y4, Y13
+	VUNPCKHPD   Y11, Y4, Y14
+	VUNPCKLPD   Y9, Y12, Y15
+	VUNPCKHPD   Y9, Y12, Y9
+	VPERM2F128  $0x20, Y15, Y13, Y4
+	VPERM2F128  $0x31, Y15, Y13, Y11
+	VPERM2F128  $0x20, Y9, Y14, Y12
+	VPERM2F128  $0x31, Y9, Y14, Y9
+	VMULPD      Y10, Y10, Y13
+	VMULPD      two<>+0(SB), Y10, Y14
+	VMOVUPD     quickThree<>+0(SB), Y15
+	VSUBPD      Y14, Y15, Y14
+	VMULPD      Y14, Y13, Y14
+	VSUBPD      Y4, Y11, Y11
+	VMULPD      Y11, Y14, Y11
+	VADDPD      Y11, Y4, Y4
+	VMOVUPD     one<>+0(SB), Y15
+	VSUBPD      Y10, Y15, Y15
+	VMULPD      Y15, Y15, Y15
+	VMULPD      Y15, Y10, Y15
+	VMULPD      quickWidth<>+0(SB), Y15, Y15
+	VMULPD      Y12, Y15, Y15
+	VSUBPD      Y15, Y4, Y4
+	VSUBPD      one<>+0(SB), Y10, Y15
+	VMULPD      Y15, Y13, Y15
+	VMULPD      quickWidth<>+0(SB), Y15, Y15
+	VMULPD      Y9, Y15, Y15
+	VSUBPD      Y15, Y4, Y4
+	VMOVUPD     one<>+0(SB), Y9
+	VBLENDVPD   Y6, Y4, Y9, Y4
+	VANDNPD     Y4, Y8, Y4
+	VADDPD      Y4, Y7, Y7
+
+weigh:
+	VMULPD    Y2, Y7, Y7
+	VMINPD    one<>+0(SB), Y7, Y7
+	VMOVUPD   one<>+0(SB), Y4
+	VBLENDVPD Y5, Y7, Y4, Y7
+	VMULPD    (AX)(R10*1), Y7, Y7
+	VADDPD    Y7, Y3, Y3
+	ADDQ      $0x20, R10
+	JMP       next
+
+done:
+	VMOVUPD Y3, (R8)
+	VZEROUPPER
+	RET
+
+DATA quickSteps<>+0(SB)/8, $0x4050000000000000
+DATA quickSteps<>+8(SB)/8, $0x4050000000000000
+DATA quickSteps<>+16(SB)/8, $0x4050000000000000
+DATA quickSteps<>+24(SB)/8, $0x4050000000000000
+GLOBL quickSteps<>(SB), RODATA|NOPTR, $32
+
+DATA quickMiddle<>+0(SB)/8, $0x4082000000000000
+DATA quickMiddle<>+8(SB)/8, $0x4082000000000000
+DATA quickMiddle<>+16(SB)/8, $0x4082000000000000
+DATA quickMiddle<>+24(SB)/8, $0x4082000000000000
+GLOBL quickMiddle<>(SB), RODATA|NOPTR, $32
+
+DATA quickEnds<>+0(SB)/8, $0x4092000000000000
+DATA quickEnds<>+8(SB)/8, $0x4092000000000000
+DATA quickEnds<>+16(SB)/8, $0x4092000000000000
+DATA quickEnds<>+24(SB)/8, $0x4092000000000000
+GLOBL quickEnds<>(SB), RODATA|NOPTR, $32
+
+DATA quickWidth<>+0(SB)/8, $0x3f90000000000000
+DATA quickWidth<>+8(SB)/8, $0x3f90000000000000
+DATA quickWidth<>+16(SB)/8, $0x3f90000000000000
+DATA quickWidth<>+24(SB)/8, $0x3f90000000000000
+GLOBL quickWidth<>(SB), RODATA|NOPTR, $32
+
+DATA quickThree<>+0(SB)/8, $0x4008000000000000
+DATA quickThree<>+8(SB)/8, $0x4008000000000000
+DATA quickThree<>+16(SB)/8, $0x4008000000000000
+DATA quickThree<>+24(SB)/8, $0x4008000000000000
+GLOBL quickThree<>(SB), RODATA|NOPTR, $32
+
+DATA quickEnd<>+0(SB)/8, $0x4022000000000000
+DATA quickEnd<>+8(SB)/8, $0x4022000000000000
+DATA quickEnd<>+16(SB)/8, $0x4022000000000000
+DATA quickEnd<>+24(SB)/8, $0x4022000000000000
+GLOBL quickEnd<>(SB), RODATA|NOPTR, $32

@@ -195,7 +195,7 @@ func (m *Motion) planeStep(s *filter.Step, b body, g ground, frame geo.Frame, po
 	if heading < 0 {
 		return 0, fmt.Errorf("sensor: motion in the vehicle's own axes needs a heading on a plane: declare the sensor in the suite, so that heading_rad is estimated, or send displacement or speed with course")
 	}
-	_, _, ks := frame.Rotation(pose.At)
+	_, ks := frame.Convergence(pose.At)
 	local := &bodyMotion{
 		k: len(qs), heading: heading, scale: filter.Index(qs, filter.OdometerScale), bias: -1, b: b, frameScale: ks,
 	}

@@ -70,6 +70,7 @@ func (s *Session) add(ev sensor.Event) ([]*summary.Posterior, error) {
 	if err := sensor.Supports(ev.Measurement, s.dim, s.state.belief.Quantities); err != nil {
 		return nil, &Refusal{WrongSpace, err.Error()}
 	}
+	s.poseFor(ev)
 	if _, err := sensor.Likelihoods(ev, s.context(ev)); err != nil {
 		return nil, &Refusal{Unusable, err.Error()}
 	}

@@ -160,6 +160,7 @@ func (s *Session) begin() {
 // makes the posterior: nil if it is passed over.
 func (s *Session) step(t sensor.Time, end int) *summary.Posterior {
 	st := &s.state
+	s.poseFor(s.log.events[s.log.next:end]...)
 	if t > st.time {
 		s.move(t)
 	}

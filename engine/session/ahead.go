@@ -26,6 +26,9 @@ func (s *Session) Ahead() (*Ahead, error) {
 	if !s.state.begun {
 		return nil, errors.New("there is no posterior yet")
 	}
+	if s.state.poseDue {
+		s.takePose()
+	}
 	c := &Session{
 		vehicle: s.vehicle, space: s.space, lines: s.lines, names: s.names, suite: s.suite, dim: s.dim,
 		cellsM: s.cellsM, maxCells: s.maxCells, maxCarried: maxCarried,

@@ -39,8 +39,45 @@ func (s *Session) summarise() *summary.Posterior {
 	return p
 }
 
-// pose takes the pose that summarise would, at a fraction of its cost.
+// pose takes the pose that summarise would, at a fraction of its cost; on roads not
+// before somebody asks for it, since odometers and gyros do not.
 func (s *Session) pose() {
+	if s.state.posedAt, s.state.poseDue = s.state.time, true; s.lines == nil || s.suite.Vehicle.HasVelocity() {
+		s.takePose()
+	}
+}
+
+// poseFor takes the pose if it is due and one of the events, or what measures the
+// motion, is turned into the frame by it.
+func (s *Session) poseFor(events ...sensor.Event) {
+	if !s.state.poseDue {
+		return
+	}
+	for i := range events {
+		if !alongRoads(events[i].Measurement) {
+			s.takePose()
+			return
+		}
+	}
+	for i := range s.log.sources {
+		if of := s.log.sources[i].events; !alongRoads(of[len(of)-1].Measurement) {
+			s.takePose()
+			return
+		}
+	}
+}
+
+// alongRoads says that a measurement means the same on roads wherever the vehicle is.
+func alongRoads(m sensor.Measurement) bool {
+	switch m.(type) {
+	case sensor.Travel, sensor.Turn, sensor.Standstill:
+		return true
+	}
+	return false
+}
+
+func (s *Session) takePose() {
+	s.fresh = false // the desk's sum has only part of it
 	in := s.input()
 	mean, heading, err := s.desk().sum.Pose(&in)
 	if err != nil {
@@ -53,7 +90,7 @@ func (s *Session) pose() {
 // the frame from there.
 func (s *Session) stand(at geo.Point, heading summary.Direction) {
 	st := &s.state
-	st.pose, st.posedAt = sensor.Pose{At: at, HeadingVar: sensor.NoHeading}, st.time
+	st.pose, st.posedAt, st.poseDue = sensor.Pose{At: at, HeadingVar: sensor.NoHeading}, st.time, false
 	if heading.Known {
 		g, _ := s.space.Frame().Convergence(at)
 		st.pose.HeadingRad = geo.WrapPi(heading.TrueRad - g)

@@ -214,6 +214,7 @@ func (st *state) code(c *exact.Coder, searches []*search) {
 	c.Value(&st.posteriorAt)
 	c.Bool(&st.unread)
 	c.Value(&st.posedAt)
+	c.Bool(&st.poseDue)
 	exact.Slice(c, &st.previous, 12, func(l *lastEvent) {
 		l.code(c)
 		c.Value(&l.time)

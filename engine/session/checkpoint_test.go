@@ -133,7 +133,7 @@ func TestFieldsOfCheckpoints(t *testing.T) {
 		fields int
 	}{
 		{Session{}, 54},
-		{state{}, 21},
+		{state{}, 22},
 		{aside{}, 10},
 		{snapshot{}, 3},
 		{log{}, 7},

@@ -13,6 +13,8 @@ import (
 // what the workspace records (filter.Workspace.Record).
 type desk struct {
 	work   filter.Workspace
+	room   filter.Gaussians // for those of the belief; if they are lodged, what they were in
+	lodged bool
 	cloud  filter.Cloud
 	ground filter.Columns // under the cloud, on a plane
 	sum    summary.Summarizer
@@ -44,6 +46,9 @@ func (s *Session) desk() *desk {
 	s.fresh = false
 	s.own.work.Depart(s.rates.off > 0)
 	s.own.sum.Set(s.shown())
+	if s.own.lodged = s.desks != nil && s.state.belief.Cells() <= deskCells; s.own.lodged {
+		s.state.belief.Lodge(&s.own.room)
+	}
 	return s.own
 }
 
@@ -65,6 +70,9 @@ func (s *Session) Rest() {
 		return
 	}
 	s.own = nil
+	if d.lodged {
+		s.state.belief.Lodge(&d.room)
+	}
 	s.state.belief.Clip()
 	if d.widest <= deskCells {
 		s.desks.pool.Put(d)

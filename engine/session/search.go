@@ -144,7 +144,7 @@ func (s *Session) turnHere() {
 	}
 	_, at, _ := st.belief.Moments(s.space, &s.desk().work)
 	st.pose = sensor.Pose{At: at, HeadingVar: sensor.NoHeading}
-	st.evidence, st.posedAt = nil, st.time
+	st.evidence, st.posedAt, st.poseDue = nil, st.time, false
 }
 
 // turnEveryS: the frame's north turns by less than 0.01° over a kilometre.

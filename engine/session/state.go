@@ -35,6 +35,8 @@ type state struct {
 	// posedAt is when the pose was taken: with a posterior, or where one was passed
 	// over because nobody wanted it (Config.PosteriorS).
 	posedAt sensor.Time
+	// poseDue says that the pose is still to be taken, of the present belief.
+	poseDue bool
 	// previous holds the last processed event of each voice, in order.
 	previous  []lastEvent
 	processed uint64 // events

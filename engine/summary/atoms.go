@@ -36,6 +36,13 @@ type needle struct {
 // distance is that of its middle.
 func (a *needle) distance() float64 { return math.Sqrt(a.w2 + float64(a.v*a.v)) }
 
+// columns are needles as kernel.Beyond takes them.
+type columns struct{ mass, w2, v, is []float64 }
+
+func (c *columns) resize(n int) {
+	c.mass, c.w2, c.v, c.is = resize(c.mass, n), resize(c.w2, n), resize(c.v, n), resize(c.is, n)
+}
+
 // gaussHermite are nodes and weights for the standard normal distribution
 // (probabilists' form), the positive half; Abramowitz & Stegun table 25.10 with
 // nodes times sqrt 2 and weights over sqrt π.
@@ -147,13 +154,12 @@ func (s *Summarizer) needle(mass, w, v, is, sigma float64) {
 }
 
 // outside returns the mass outside the circle of radius r around the centre,
-// of the active pieces.
-
+// of the near pieces.
 func (s *Summarizer) outside(r float64) float64 {
 	sum := s.beyond
 	t := s.tables
-	for i := range s.activeDiscs {
-		a := &s.activeDiscs[i]
+	for i := range s.nearDiscs {
+		a := &s.nearDiscs[i]
 		switch {
 		case r >= a.d+a.reach:
 		case r <= a.d-a.reach || a.is == 0:
@@ -162,24 +168,6 @@ func (s *Summarizer) outside(r float64) float64 {
 			sum += float64(a.mass * t.circleTail(a.d*a.is, r*a.is))
 		}
 	}
-	r2 := r * r
-	for i := range s.activeNeedles {
-		a := &s.activeNeedles[i]
-		c2 := r2 - a.w2
-		if c2 <= 0 {
-			sum += a.mass
-			continue
-		}
-		c := math.Sqrt(c2)
-		near := (c - a.v) * a.is
-		if near >= tailEnd {
-			continue
-		}
-		p := kernel.QuickUpper(near)
-		if far := (c + a.v) * a.is; far < tailEnd {
-			p += kernel.QuickUpper(far)
-		}
-		sum += float64(a.mass * min(needleExcess*p, 1))
-	}
-	return sum
+	n := &s.near
+	return sum + kernel.Beyond(n.mass, n.w2, n.v, n.is, r*r, needleExcess)
 }

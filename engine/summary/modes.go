@@ -37,9 +37,9 @@ type modeSum struct {
 // findModes fills the modes and returns the mass of the heaviest and how many
 // hold at least ambiguousFrom.
 func (s *Summarizer) findModes(dst *Posterior, in *Input) (best float64, heavy int) {
-	side := math.Max(s.opt.AlertLimitM/sidesPerLimit, s.typicalM)
+	side := max(s.opt.AlertLimitM/sidesPerLimit, s.typicalM)
 	// The grid must number its columns in 30 bits; no map is so large.
-	side = math.Max(side, s.extent()/(1<<30))
+	side = max(side, s.extent()/(1<<30))
 	h := &s.hills
 	h.reset(side, len(s.mass))
 	h.lay(s.east, s.north)
@@ -78,7 +78,7 @@ func (s *Summarizer) findModes(dst *Posterior, in *Input) (best float64, heavy i
 			Charts: m.chart, ChartCount: m.charts,
 		}
 		if _, minor := m.cov.Axes(); minor > 0 && m.mass >= ambiguousFrom {
-			s.modeSigmaM = math.Min(s.modeSigmaM, minor)
+			s.modeSigmaM = min(s.modeSigmaM, minor)
 		}
 	}
 	return s.modes[0].mass, heavy
@@ -88,7 +88,7 @@ func (s *Summarizer) findModes(dst *Posterior, in *Input) (best float64, heavy i
 func (s *Summarizer) extent() float64 {
 	most := 0.0
 	for i := range s.east {
-		most = math.Max(most, math.Max(math.Abs(s.east[i]), math.Abs(s.north[i])))
+		most = max(most, max(math.Abs(s.east[i]), math.Abs(s.north[i])))
 	}
 	return most
 }

@@ -68,7 +68,7 @@ func (s *Summarizer) moments(in *Input, q, k int, angular bool) (mean, sigma flo
 		r := float64(sin*sin) + float64(cos*cos)
 		sigma = noHeading
 		if r > 0 {
-			sigma = math.Min(math.Sqrt(math.Max(-kernel.Log(r), 0)), noHeading)
+			sigma = min(math.Sqrt(max(-kernel.Log(r), 0)), noHeading)
 		}
 		return kernel.Atan2(sin, cos), sigma
 	}
@@ -87,7 +87,7 @@ func (s *Summarizer) moments(in *Input, q, k int, angular bool) (mean, sigma flo
 		d := x - mean
 		variance += float64(m * (v + float64(d*d)))
 	})
-	return mean, math.Sqrt(math.Max(variance, 0))
+	return mean, math.Sqrt(max(variance, 0))
 }
 
 // offMoments calls use with the mass, mean and variance of the quantity q of each
@@ -149,7 +149,7 @@ func (s *Summarizer) entropy(in *Input) float64 {
 					det = twoPiE * twoPiE * (float64(v.EE*v.NN) - float64(v.EN*v.EN))
 				}
 			}
-			if v := math.Max(math.Min(size2, det), 1e-24); v != last {
+			if v := max(min(size2, det), 1e-24); v != last {
 				last, lastLog = v, 0.5*kernel.Log(v)
 			}
 			h += float64(m * (lastLog - kernel.Log(m)))

@@ -54,9 +54,8 @@ func (s *Summarizer) takeApart(centre geo.Point, meanSquare float64) {
 			s.take(m, geo.Point{E: s.east[i], N: s.north[i]}.Sub(centre), s.covs[i], meanSquare)
 		}
 	}
-	s.sorted = len(s.discs)+len(s.needles) > fewPieces
-	s.beyond, s.activeDiscs, s.activeNeedles = 0, s.discs, s.needles
-	if !s.sorted {
+	s.known = s.known[:0]
+	if s.sorted = len(s.discs)+len(s.needles) > fewPieces; !s.sorted {
 		return
 	}
 	clear(s.ringMass[:])
@@ -64,19 +63,35 @@ func (s *Summarizer) takeApart(centre geo.Point, meanSquare float64) {
 	for i := range s.discs {
 		a := &s.discs[i]
 		s.ringMass[ringOf(a.d)] += a.mass
-		s.maxReach = math.Max(s.maxReach, a.reach)
+		s.maxReach = max(s.maxReach, a.reach)
 	}
 	for i := range s.needles {
 		a := &s.needles[i]
 		s.ringMass[ringOf(a.distance())] += a.mass
-		s.maxReach = math.Max(s.maxReach, a.reach)
+		s.maxReach = max(s.maxReach, a.reach)
 	}
 }
 
+// lightShare is the part of the mass asked for outside that pieces may hold together
+// which count as outside, wherever they are: their own mass then tells next to nothing
+// of the radius.
+const lightShare = 1e-3
+
 // bracket returns radii between which the mass outside falls to target, and
-// makes the pieces whose tails differ between them the active ones.
+// makes the pieces whose tails differ between them the near ones; of few pieces those
+// that are not too light to tell.
 func (s *Summarizer) bracket(target float64) (low, high float64) {
+	s.beyond, s.nearDiscs = 0, s.nearDiscs[:0]
 	if !s.sorted {
+		light := lightShare * target / float64(len(s.discs)+len(s.needles))
+		for i := range s.discs {
+			if m := s.discs[i].mass; m < light {
+				s.beyond += m
+			} else {
+				s.nearDiscs = append(s.nearDiscs, s.discs[i])
+			}
+		}
+		s.keepNear(func(a *needle) (near, beyond bool) { return a.mass >= light, true })
 		return 0, math.Inf(1)
 	}
 	// Everything moved outward by maxReach has at most target outside the
@@ -87,10 +102,8 @@ func (s *Summarizer) bracket(target float64) (low, high float64) {
 			break
 		}
 	}
-	low = math.Max(ringFrom(i)-s.maxReach, 0)
+	low = max(ringFrom(i)-s.maxReach, 0)
 	high = (ringFrom(i+1) + s.maxReach) * (1 + 1e-9)
-	s.beyond = 0
-	s.nearDiscs, s.nearNeedles = s.nearDiscs[:0], s.nearNeedles[:0]
 	for j := range s.discs {
 		a := &s.discs[j]
 		switch {
@@ -101,18 +114,40 @@ func (s *Summarizer) bracket(target float64) (low, high float64) {
 			s.nearDiscs = append(s.nearDiscs, *a)
 		}
 	}
-	for j := range s.needles {
-		a := &s.needles[j]
-		switch d := a.distance(); {
-		case d+a.reach < low:
-		case d-a.reach > high:
-			s.beyond += a.mass
-		default:
-			s.nearNeedles = append(s.nearNeedles, *a)
+	s.keepNear(func(a *needle) (near, beyond bool) {
+		d := a.distance()
+		beyond = d-a.reach > high
+		return !beyond && !(d+a.reach < low), beyond
+	})
+	return low, high
+}
+
+// keepNear makes the needles of which that is said the near ones, and counts the mass
+// of others that are beyond.
+func (s *Summarizer) keepNear(where func(a *needle) (near, beyond bool)) {
+	n, c := len(s.needles), &s.near
+	if s.sorted { // of many, few are
+		n = 0
+		for i := range s.needles {
+			if near, _ := where(&s.needles[i]); near {
+				n++
+			}
 		}
 	}
-	s.activeDiscs, s.activeNeedles = s.nearDiscs, s.nearNeedles
-	return low, high
+	c.resize(n)
+	n = 0
+	mass, w2, v, is := c.mass, c.w2[:len(c.mass)], c.v[:len(c.mass)], c.is[:len(c.mass)]
+	for i := range s.needles {
+		a := &s.needles[i]
+		switch near, beyond := where(a); {
+		case near:
+			mass[n], w2[n], v[n], is[n] = a.mass, a.w2, a.v, a.is
+			n++
+		case beyond:
+			s.beyond += a.mass
+		}
+	}
+	c.resize(n)
 }
 
 // radius returns the smallest radius, to radiusStep above it, outside which
@@ -126,19 +161,35 @@ func (s *Summarizer) radius(target, rms float64) float64 {
 	return r
 }
 
+// tried is a squared radius and ln of the mass outside.
+type tried struct{ r2, ln float64 }
+
+// guess returns a first radius for a target below those of what was tried before: on
+// the straight line of ln P over r² through the last two, through P = 1 at 0 and the
+// root mean square if there are none; and the last of them.
+func (s *Summarizer) guess(lnTarget, rms float64) (r float64, last tried) {
+	if n := len(s.known); n >= 2 {
+		a, b := s.known[n-2], s.known[n-1]
+		if r := math.Sqrt(b.r2 + (lnTarget-b.ln)*(b.r2-a.r2)/(b.ln-a.ln)); r > 0 {
+			return r * (1 + 0.4*radiusStep), b
+		}
+	}
+	return rms * math.Sqrt(-lnTarget), tried{}
+}
+
 // search keeps a bracket whose upper end satisfies the condition. It guesses by
 // the secant, over the last two radii, of ln P over r², which is a straight line
-// for one circular Gaussian: the first from P = 1 at 0 and ln P = -r²/rms². Where
+// for one circular Gaussian: see guess for the first. Where
 // the guess leaves the bracket, and every fourth time, it takes the middle.
 func (s *Summarizer) search(target, rms float64) float64 {
 	low, high := s.bracket(target)
 	lnTarget := kernel.Log(target)
-	r := rms * math.Sqrt(-lnTarget)
+	r, last := s.guess(lnTarget, rms)
 	if r == 0 {
 		return 0 // all mass is in one point
 	}
-	// The last point, as r² and y = ln P - ln target: y falls through 0.
-	lastR2, lastY := 0.0, -lnTarget
+	// The last point's y = ln P - ln target: y falls through 0.
+	lastR2, lastY := last.r2, last.ln-lnTarget
 	for round := 1; round <= 100; round++ {
 		if !(r > low && r < high) || round%4 == 0 {
 			r = 0.5 * (low + high)
@@ -147,7 +198,9 @@ func (s *Summarizer) search(target, rms float64) float64 {
 			}
 		}
 		r2 := r * r
-		y := kernel.Log(s.outside(r)) - lnTarget // -Inf if nothing is outside
+		ln := kernel.Log(s.outside(r))
+		y := ln - lnTarget // -Inf if nothing is outside
+		s.known = append(s.known, tried{r2, ln})
 		slope := (y - lastY) / (r2 - lastR2)
 		if y <= 0 {
 			high = r

@@ -35,11 +35,13 @@ type Summarizer struct {
 	spread            Cov     // around the mean
 	modeSigmaM        float64 // sigma of the tightest heavy mode
 
-	discs, nearDiscs, activeDiscs       []disc
-	needles, nearNeedles, activeNeedles []needle
-	sorted, dots                        bool
-	beyond, maxReach                    float64
-	ringMass                            [rings]float64
+	discs, nearDiscs []disc
+	needles          []needle
+	near             columns
+	known            []tried // radii, while they are found
+	sorted, dots     bool
+	beyond, maxReach float64
+	ringMass         [rings]float64
 
 	hills   hills
 	modes   []modeSum
@@ -119,10 +121,10 @@ func (s *Summarizer) Summarize(dst *Posterior, in *Input) error {
 	s.takeApart(mean, s.spread.EE+s.spread.NN)
 	// Each is found to radiusStep by itself: together they must not fall.
 	dst.Radius50M = s.radius(0.5, rms) / scale
-	dst.Radius95M = math.Max(s.radius(0.05, rms)/scale, dst.Radius50M)
-	dst.Radius99M = math.Max(s.radius(0.01, rms)/scale, dst.Radius95M)
+	dst.Radius95M = max(s.radius(0.05, rms)/scale, dst.Radius50M)
+	dst.Radius99M = max(s.radius(0.01, rms)/scale, dst.Radius95M)
 	dst.Protection = s.protection(in, rms)
-	dst.Protection.RadiusM = math.Max(dst.Protection.RadiusM/scale, dst.Radius99M)
+	dst.Protection.RadiusM = max(dst.Protection.RadiusM/scale, dst.Radius99M)
 	dst.OffMap, dst.Lost = in.off(), in.Lost
 	dst.AlertLimitM = s.opt.AlertLimitM
 	dst.Status = statusOf(in.Contradicted, dst.OffMap, best*(1-in.Lost), heavy, dst.Radius95M, s.opt.AlertLimitM)
@@ -194,7 +196,7 @@ func (s *Summarizer) load(in *Input) (mean geo.Point, err error) {
 		s.mass[i] = m
 		v := Cov{c.VarEE[i], c.VarEN[i], c.VarNN[i]}
 		if s.dim == 1 {
-			typical += float64(m * math.Max(in.Lines.WidthM[c.Chart[i]], sqrt12*math.Sqrt(v.EE+v.NN)))
+			typical += float64(m * max(in.Lines.WidthM[c.Chart[i]], sqrt12*math.Sqrt(v.EE+v.NN)))
 			v = across(v, lateral)
 		} else {
 			typical += float64(m * sqrt12 * math.Sqrt(0.5*(v.EE+v.NN)))
@@ -218,7 +220,7 @@ func (s *Summarizer) load(in *Input) (mean geo.Point, err error) {
 	case s.dim == 1:
 		s.grainM = 0.5 * s.opt.LateralSigmaM
 	case in.Belief.K() > 0:
-		s.typicalM = math.Max(typical, in.Belief.Lattice.SpacingM)
+		s.typicalM = max(typical, in.Belief.Lattice.SpacingM)
 		s.grainM = 0.5 * typical / sqrt12
 	default:
 		s.fillSquares(in.Belief.Lattice.SpacingM)
@@ -254,10 +256,10 @@ func (s *Summarizer) appendOff(l *filter.Loose, share float64) (mean geo.Point) 
 // is the belief's (the cloud then says 0), but a radius or a region of points
 // would end between two of them.
 func (s *Summarizer) fillSquares(h float64) {
-	s.typicalM = math.Max(s.typicalM, h)
+	s.typicalM = max(s.typicalM, h)
 	s.grainM = h
 	v := &s.covs[0] // all are alike
-	s.square = Cov{EE: math.Max(h*h/12-v.EE, 0), NN: math.Max(h*h/12-v.NN, 0)}
+	s.square = Cov{EE: max(h*h/12-v.EE, 0), NN: max(h*h/12-v.NN, 0)}
 	for i := range s.covs {
 		s.covs[i].EE += s.square.EE
 		s.covs[i].NN += s.square.NN

@@ -30,5 +30,6 @@ func main() {
 	exps(c)
 	normalSeries(c)
 	normalFraction(c)
+	beyond(c)
 	Generate()
 }
