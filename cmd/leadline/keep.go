@@ -46,7 +46,7 @@ func (o *keepOptions) flags(c *cobra.Command) {
 	f.DurationVar(&o.keepFor, "keep-for", 720*time.Hour, "for how long what was measured is kept at most, and drives that are silent; 0 is without end")
 	f.StringVar(&o.shareAt, "share", "", "share the broker's journal with other servers, which reach this one at HOST:PORT: each serves a part of the vehicles")
 	f.StringVar(&o.shareAuthority, "share-authority", "", "file with the certificates that sign those of the other servers (default: the system's)")
-	f.IntVar(&o.partitions, "partitions", 0, "in how many parts the vehicles are divided, of a journal that is new: 4, or 64 to share")
+	f.IntVar(&o.partitions, "partitions", 0, "in how many parts the vehicles are divided, of a journal that is new: 1 with --data, 4 with --broker, 64 to share")
 	settable(c, "share", "share-authority", "partitions", "keep-for", "data", "broker", "broker-replicas", "journal-mib", "journal-free-mib")
 }
 

@@ -25,7 +25,8 @@ type Options struct {
 	// what lines need is asked for anew in time. 0 is without end.
 	MaxAge time.Duration
 	// Partitions is in how many the lines are divided, of a journal that is new.
-	// Default 4.
+	// Default 1 with Dir, where the broker syncs one pack after the other whichever
+	// partition it is of; else 4.
 	Partitions int
 	// Shared has several servers write one journal at a broker, each the partitions
 	// that it takes (Journal.Take). Lost, if set, is told from another goroutine of a
@@ -75,6 +76,9 @@ func (o Options) withDefaults() Options {
 	}
 	if o.FreeBytes == 0 {
 		o.FreeBytes = 256 << 20
+	}
+	if o.Partitions == 0 && o.Dir != "" {
+		o.Partitions = 1
 	}
 	if o.Partitions == 0 {
 		o.Partitions = 4

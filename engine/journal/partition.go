@@ -42,7 +42,7 @@ type partition struct {
 }
 
 // waiting is a part of a record in the queue; without a line it is none, and
-// waits for the next commit.
+// waits for a commit with or after all that waits already.
 type waiting struct {
 	line   *Line
 	part   part
@@ -62,8 +62,11 @@ type indexed struct {
 
 const indexEvery = 16
 
-// maxQueued bounds the bytes that wait in a partition.
+// maxQueued bounds the bytes that wait in a partition, of four or more; fewer have
+// as much together.
 const maxQueued = 64 << 20
+
+func (j *Journal) maxQueued() int { return max(maxQueued, 4*maxQueued/len(j.parts)) }
 
 func newPartition(j *Journal, i int) *partition {
 	p := &partition{
@@ -82,7 +85,7 @@ func (p *partition) append(l *Line, kind byte, data []byte, urgent bool, done fu
 		err = ErrClosed
 	case err == nil && p.down != nil && p.bytes > 0:
 		err = p.down // what waits already shows when it is over
-	case err == nil && p.bytes+len(data) > maxQueued && p.bytes > 0:
+	case err == nil && p.bytes+len(data) > p.j.maxQueued() && p.bytes > 0:
 		err = fmt.Errorf("%w: %d MiB wait to be committed", ErrDown, p.bytes>>20)
 	}
 	switch {
@@ -172,24 +175,60 @@ func (p *partition) run() {
 	}
 }
 
-// take takes what makes one pack off the queue.
+// take takes what makes one pack off the queue: in its order, but of long records no
+// more than mostLong parts while others wait, who would else wait for several packs.
 func (p *partition) take() (batch []waiting, closed bool) {
 	p.mu.Lock()
 	defer p.mu.Unlock()
-	size, n := 0, 0
-	for n < len(p.queue) && (n == 0 || size+partBytes+len(p.queue[n].part.data) <= maxPack) {
-		size += partBytes + len(p.queue[n].part.data)
-		p.bytes -= len(p.queue[n].part.data)
-		n++
+	size := 0
+	add := func(w *waiting) {
+		size += partBytes + len(w.part.data)
+		p.bytes -= len(w.part.data)
+		batch = append(batch, *w)
 	}
-	batch = append(batch, p.queue[:n]...)
+	long := 0
+	var later []waiting        // in order
+	behind := map[*Line]bool{} // lines of which some are later: so are all that follow
+	n := 0
+	for ; n < len(p.queue); n++ {
+		w := &p.queue[n]
+		if w.line == nil && len(later) > 0 { // it comes after all that waits
+			break
+		}
+		if len(w.part.data) == maxPart && long == mostLong || behind[w.line] {
+			behind[w.line] = true
+			later = append(later, *w)
+			continue
+		}
+		if len(batch) > 0 && size+partBytes+len(w.part.data) > maxPack {
+			break
+		}
+		if len(w.part.data) == maxPart {
+			long++
+		}
+		add(w)
+	}
+	rest := p.queue[n:]
+	if len(rest) == 0 || rest[0].line == nil { // nobody else waits
+		for len(later) > 0 && size+partBytes+len(later[0].part.data) <= maxPack {
+			add(&later[0])
+			later = later[1:]
+		}
+	}
+	if len(later) > 0 {
+		rest = append(later, rest...)
+	}
 	clear(p.queue[:n])
-	if p.queue = p.queue[n:]; len(p.queue) == 0 {
+	if p.queue = rest; len(p.queue) == 0 {
 		p.queue = nil
 	}
-	p.taken = n
+	p.taken = len(batch)
 	return batch, p.closed
 }
+
+// mostLong is how many full parts, which are those of long records, go into a pack
+// while others wait.
+const mostLong = 2
 
 // serve commits a batch and tells who waits for it, of each line in order. What
 // there is no room for is left out, with all else of its lines.
