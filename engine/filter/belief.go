@@ -37,15 +37,20 @@ type Belief struct {
 
 // Clip gives back the memory that the columns have beyond what they hold.
 func (b *Belief) Clip() {
-	clip(&b.Key, 2)
-	clip(&b.Mass, 2)
-	clip(&b.Mean, 2)
-	clip(&b.Cov, 2)
+	b.Gaussians.Clip()
 	clip(&b.Tiles.At, 8)
 	clip(&b.Tiles.Mass, 8)
 	clip(&b.Slices.At, 8)
 	clip(&b.Slices.Rows, 8)
 	clip(&b.Slices.Mass, 8)
+}
+
+// Clip gives back the memory that the columns have far beyond what they hold.
+func (c *Gaussians) Clip() {
+	clip(&c.Key, 2)
+	clip(&c.Mass, 2)
+	clip(&c.Mean, 2)
+	clip(&c.Cov, 2)
 }
 
 // clip leaves a part more than what there is.

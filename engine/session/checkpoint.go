@@ -128,7 +128,12 @@ func (s *Session) code(c *exact.Coder, found *[]recipe) {
 		}
 	})
 	s.log.code(c)
-	c.Value(&s.past)
+	before := s.past.all()
+	c.Value(&before)
+	if c.Reading() {
+		s.past = past{}
+		s.past.add(before)
+	}
 	recent, final := s.recent, s.final
 	if !c.Reading() && final > 1 { // one says until when what is told is final
 		recent, final = recent[final-1:], 1

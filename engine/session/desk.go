@@ -74,6 +74,7 @@ func (s *Session) Rest() {
 		s.state.belief.Lodge(&d.room)
 	}
 	s.state.belief.Clip()
+	s.state.aside.loose.Clip()
 	if d.widest <= deskCells {
 		s.desks.pool.Put(d)
 	}

@@ -68,7 +68,7 @@ func (s *Session) Earlier(agoS float64) (*Earlier, error) {
 			agoS, max(0, e.until.Seconds(s.snaps[0].time)))
 	}
 	copied := s.fork()
-	copied.past, copied.beginWork, copied.leads = slices.Clone(s.past), nil, nil
+	copied.past, copied.beginWork, copied.leads = s.past.clone(), nil, nil
 	copied.watch, copied.finals, copied.settled = nil, nil, nil
 	copied.until = now
 	e.l = &looker{s: copied, HindsightOptions: HindsightOptions{TapeBytes: earlierTapeBytes}}

@@ -117,7 +117,7 @@ func (l *looker) reread(c cut) error {
 	for _, src := range c.heard {
 		s.log.sources = append(s.log.sources, source{name: src.name, until: src.until, events: []sensor.Event{src.events[0]}})
 	}
-	s.past = s.past[:0]
+	s.past = past{}
 	if s.rates.lost != 0 || s.rates.moved != 0 { // for searches
 		for at := max(0, c.next-maxSearched-maxSearched/4); at < c.next; {
 			read, err := l.all.Read(at)
@@ -125,7 +125,7 @@ func (l *looker) reread(c cut) error {
 				return fmt.Errorf("looking back: reading event %d again: %w", at, err)
 			}
 			read = read[:min(len(read), c.next-at)]
-			s.past = append(s.past, read...)
+			s.past.add(read)
 			at += len(read)
 		}
 	}

@@ -160,7 +160,7 @@ func (l *log) drop(t sensor.Time, all bool, keep func([]sensor.Event)) {
 	}
 }
 
-func worth(n, of int, all bool) bool { return n > 0 && (all || n > 256 && n > of/2) }
+func worth(n, of int, all bool) bool { return n > 0 && (all || n > 32 && n > of/2) }
 
 // group returns the end of the events that have the time of event i, and
 // whether all of them are motion.

@@ -60,6 +60,10 @@ func sameAnswer(a, b *summary.Posterior) bool {
 	return reflect.DeepEqual(p, q) // no figure is NaN
 }
 
+// keptFinal is how many posteriors that are final are let go of at once: the last one says
+// until when.
+const keptFinal = 8
+
 // finish makes the recent posteriors below n final.
 func (s *Session) finish(n int) {
 	for ; s.final < n; s.final++ {
@@ -68,7 +72,7 @@ func (s *Session) finish(n int) {
 			s.finals(s.recent[s.final])
 		}
 	}
-	if drop := s.final - 1; drop > 256 {
+	if drop := s.final - 1; drop > keptFinal {
 		s.recent = slices.Delete(s.recent, 0, drop)
 		s.final -= drop
 	}

@@ -40,7 +40,7 @@ type search struct {
 	until, enter sensor.Time
 }
 
-// keepPast keeps events that the log drops, for searches; in large bites.
+// keepPast keeps events that the log drops, for searches.
 func (s *Session) keepPast(dropped []sensor.Event) {
 	if s.settled != nil {
 		s.settled(dropped)
@@ -48,15 +48,8 @@ func (s *Session) keepPast(dropped []sensor.Event) {
 	if s.unheard || s.rates.lost == 0 && s.rates.moved == 0 {
 		return
 	}
-	s.past = append(s.past, dropped...)
-	if len(s.past) < 1024 {
-		return
-	}
-	n := len(s.past)
-	oldest := s.past[n-1].Time - sensor.Time(1.25*searchBackS*1e9)
-	from := sort.Search(n, func(i int) bool { return s.past[i].Time >= oldest })
-	if from = max(from, n-maxSearched-maxSearched/4); from > n/8 {
-		s.past = append(s.past[:0], s.past[from:]...)
+	if s.past.add(dropped); len(dropped) > 0 {
+		s.past.forget(dropped[len(dropped)-1].Time-sensor.Time(searchBackS*1e9), maxSearched)
 	}
 }
 
@@ -102,16 +95,13 @@ func (s *Session) search(events []sensor.Event, until, enter sensor.Time) *searc
 
 // events returns those after from, up to until, at most maxSearched of them.
 func (s *Session) events(from, until sensor.Time) []sensor.Event {
-	var all []sensor.Event
-	take := func(evs []sensor.Event) {
-		a := sort.Search(len(evs), func(i int) bool { return evs[i].Time > from })
-		b := sort.Search(len(evs), func(i int) bool { return evs[i].Time > until })
-		if a < b {
-			all = append(all, evs[a:b]...)
-		}
+	all := s.past.between(nil, from, until)
+	evs := s.log.events
+	a := sort.Search(len(evs), func(i int) bool { return evs[i].Time > from })
+	b := sort.Search(len(evs), func(i int) bool { return evs[i].Time > until })
+	if a < b {
+		all = append(all, evs[a:b]...)
 	}
-	take(s.past)
-	take(s.log.events)
 	return all[max(0, len(all)-maxSearched):]
 }
 

@@ -157,7 +157,7 @@ type Session struct {
 	areaM2 float64       // of the map's box
 	// For searches: events that the log has dropped, who runs them; and in one's
 	// own session that nobody reads it, and until when it goes.
-	past      []sensor.Event
+	past      past
 	beginWork func(func()) func()
 	unheard   bool
 	// fromAnywhere: the start was, see search.go.
