@@ -66,6 +66,9 @@ func printScore(w io.Writer, run *sweep.Outcome) error {
 			if len(t.Below) > 0 {
 				line("truth", "has an error of its own of %.2f m an axis: nothing is claimed by %s", t.SigmaM, strings.Join(t.Below, ", "))
 			}
+			if t.Twofold > 0 {
+				line("truth", "says two places at one time in %d cases, of which the first of the file counts: is another vehicle or device in it?", t.Twofold)
+			}
 			if e := t.Estimate; e != nil {
 				line("offset", "of the truth, estimated and not taken off: forward %+.2f ± %.2f m, right %+.2f ± %.2f m, late %+.3f ± %.3f s",
 					e.ForwardM, e.ForwardSigmaM, e.RightM, e.RightSigmaM, e.LateS, e.LateSigmaS)

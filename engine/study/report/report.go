@@ -254,6 +254,9 @@ func (r *Report) caution(in Input) {
 		case t != nil && len(t.Below) > 0:
 			say("%s: the truth's own error is %.2g m an axis; nothing is claimed by %v.", name, t.SigmaM, t.Below)
 		}
+		if t := x.Score.TruthNote; t != nil && t.Twofold > 0 {
+			say("%s: the truth says two places at one time in %d cases, of which the first of the file counts.", name, t.Twofold)
+		}
 		key := x.Run.Map + "\x00" + x.Run.MapFingerprint
 		if _, seen := r.grounds[key]; in.Ground != nil && x.Drawn && !seen {
 			g, err := in.Ground(x.Run.Map, x.Run.MapFingerprint)

@@ -93,6 +93,9 @@ type TruthNote struct {
 	// Below names the figures that are smaller than the truth's own error:
 	// nothing is claimed by them.
 	Below []string `json:"below_truth"`
+	// Twofold is how many truths have the time of an earlier one of the file that says
+	// another place, by more than three of their standard deviations: the first counts.
+	Twofold int `json:"twofold"`
 	// Estimate is what may remain, where it was asked for. It is not taken off.
 	Estimate *Estimate `json:"estimate,omitempty"`
 }

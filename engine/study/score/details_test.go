@@ -1,6 +1,7 @@
 package score
 
 import (
+	"encoding/json"
 	"math"
 	"math/rand/v2"
 	"testing"
@@ -72,6 +73,49 @@ func TestBelowTruth(t *testing.T) {
 	if s = scored(t, walk(func(int64) (e, n float64) { return 9, 0 }, 1)); len(s.TruthNote.Below) != 1 { // across is 0
 		t.Errorf("not claimed: %v", s.TruthNote.Below)
 	}
+}
+
+// TestTwofold: truths that another vehicle or device has put in between, and ones said
+// twice, change no figure, since the first of a time counts; those that say another place
+// are counted.
+func TestTwofold(t *testing.T) {
+	in := walk(func(s int64) (e, n float64) { return float64(s % 3), 1 }, 0.5)
+	for _, p := range in.Posteriors {
+		p.TimeNS += 4e8 // between truths
+	}
+	want := scored(t, in)
+	var doubled []Truth
+	elsewhere := 0
+	for i, x := range in.Truth {
+		doubled = append(doubled, x)
+		switch i % 3 {
+		case 0:
+			other := x
+			other.At = at(float64(100*i), 900)
+			doubled = append(doubled, other)
+			elsewhere++
+		case 1:
+			doubled = append(doubled, x)
+		}
+	}
+	in.Truth = doubled
+	got := scored(t, in)
+	if got.TruthNote.Twofold != elsewhere || elsewhere < 5 {
+		t.Errorf("%d truths say another place, want %d", got.TruthNote.Twofold, elsewhere)
+	}
+	got.TruthNote.Twofold = 0
+	if a, b := asJSON(t, got), asJSON(t, want); a != b {
+		t.Errorf("with doubled truths\n%s\nwithout\n%s", a, b)
+	}
+}
+
+func asJSON(t *testing.T, v any) string {
+	t.Helper()
+	b, err := json.Marshal(v)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return string(b)
 }
 
 // TestLongestWrong: the 99 % radius is 3 m. Of a stretch of 4 s with 40 m and

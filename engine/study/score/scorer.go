@@ -108,6 +108,11 @@ func (s *Scorer) Score(startNS int64, hash string) (*Score, error) {
 	out.Details = s.details.figures(&s.counted, independent, startNS)
 	if out.TruthNote != nil {
 		out.TruthNote.Offset = s.truths.offset
+		twofold, err := s.truths.twofold()
+		if err != nil {
+			return nil, err
+		}
+		out.TruthNote.Twofold = twofold
 		if s.fit != nil {
 			out.TruthNote.Estimate = s.fit.estimate(independent)
 		}

@@ -74,6 +74,26 @@ func (t *truths) at(ns int64) (Truth, motion, bool) {
 	return at, m, true
 }
 
+// twofold counts the truths that say another place, by more than three standard
+// deviations, than the first of their time, which counts.
+func (t *truths) twofold() (n int, err error) {
+	first := 0
+	for i := 1; i < len(t.list); i++ {
+		if t.list[i].TimeNS != t.list[first].TimeNS {
+			first = i
+			continue
+		}
+		d, _, err := geo.WGS84.Distance(t.list[first].At, t.list[i].At)
+		if err != nil {
+			return 0, err
+		}
+		if d > 3*math.Hypot(t.list[first].SigmaM, t.list[i].SigmaM) {
+			n++
+		}
+	}
+	return n, nil
+}
+
 // motion is how the truth moves around a time of its own.
 func (t *truths) motion(ns int64, sigmaM float64) motion {
 	from, ok := Interpolate(t.list, ns-courseS*1e9)
@@ -121,7 +141,11 @@ func Between(truth []Truth, timeNS, gapNS int64) (Truth, bool) {
 	if i == 0 || i == len(truth) || truth[i].TimeNS-truth[i-1].TimeNS > gapNS {
 		return Truth{}, false
 	}
-	a, b := truth[i-1], truth[i]
+	last := i - 1
+	for last > 0 && truth[last-1].TimeNS == truth[last].TimeNS {
+		last--
+	}
+	a, b := truth[last], truth[i]
 	f := float64(timeNS-a.TimeNS) / float64(b.TimeNS-a.TimeNS)
 	return Truth{
 		TimeNS: timeNS,
@@ -140,16 +164,23 @@ func distance(truth []Truth, startNS, untilNS int64) (sumM float64, ok bool, err
 	if !ok || truth[0].TimeNS > startNS+maxTruthGapNS { // the way before the first truth is not known
 		return 0, false, nil
 	}
-	for i := 1; i < len(truth) && truth[i-1].TimeNS < untilNS; i++ {
-		to := truth[i]
+	from := truth[0]
+	for _, to := range truth {
+		if from.TimeNS >= untilNS {
+			break
+		}
+		if to.TimeNS == from.TimeNS {
+			continue // the first of a time counts
+		}
 		if to.TimeNS > untilNS {
 			to = end
 		}
-		m, _, err := geo.WGS84.Distance(truth[i-1].At, to.At)
+		m, _, err := geo.WGS84.Distance(from.At, to.At)
 		if err != nil {
 			return 0, false, err
 		}
 		sumM += m
+		from = to
 	}
 	return sumM, true, nil
 }
