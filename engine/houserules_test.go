@@ -92,7 +92,7 @@ var mayImport = map[string][]string{
 	"fixtures/bench":       {"engine/client", "engine/filter", "engine/geo", "engine/plane", "engine/sensor", "engine/server", "engine/session", "engine/summary", "engine/wire", "network", "network/roadfile", "proto/leadline/v1", "terrain", "fixtures/accept", "fixtures/drives", "fixtures/reference", "fixtures/sim"},
 	"fixtures/bench/run":   {"fixtures/bench"},
 	"fixtures/survive": {
-		api, "engine/client", "engine/filter", "engine/journal", "engine/sensor", "engine/server", "engine/session", "engine/summary", "engine/wire", "network/roadfile",
+		api, "engine/client", "engine/filter", "engine/journal", "engine/sensor", "engine/server", "engine/server/operate", "engine/session", "engine/summary", "engine/wire", "network/roadfile",
 		"fixtures/drives", "fixtures/roads", "fixtures/sim",
 	},
 	"tools/...": {},
