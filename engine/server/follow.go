@@ -50,7 +50,8 @@ func (s *Server) followHere(req *leadlinev1.FollowRequest, stream grpc.ServerStr
 	}
 	roads := &roadReader{}
 	if req.GetRoads() {
-		roads = &roadReader{book: s.roads, told: map[string]*leadlinev1.FollowResponse{}}
+		roads = s.roads.reader()
+		defer roads.close()
 	}
 	token := req.GetResumeToken()
 	ctx := stream.Context()

@@ -13,15 +13,22 @@ import (
 type roadBook struct {
 	news broadcast // that something in it has changed
 
-	mu  sync.Mutex
-	all map[string]*leadlinev1.FollowResponse // by name; one is replaced and never changed
-	// Roads that another server goes on with, until they are here again: that one
-	// tells of them.
-	moved map[string]bool
+	mu      sync.Mutex
+	all     map[string]*leadlinev1.FollowResponse // by name; one is replaced and never changed
+	readers map[*roadReader]bool
 }
 
 func newRoadBook() *roadBook {
-	return &roadBook{all: map[string]*leadlinev1.FollowResponse{}, moved: map[string]bool{}}
+	return &roadBook{all: map[string]*leadlinev1.FollowResponse{}, readers: map[*roadReader]bool{}}
+}
+
+// reader is a new one, for as long as it is not closed.
+func (b *roadBook) reader() *roadReader {
+	r := &roadReader{book: b, told: map[string]*leadlinev1.FollowResponse{}, moved: map[string]bool{}}
+	b.mu.Lock()
+	defer b.mu.Unlock()
+	b.readers[r] = true
+	return r
 }
 
 // put notes that a road has this drive. Of one that has been replaced nothing
@@ -32,7 +39,9 @@ func (b *roadBook) put(o *owner, ended bool) {
 	if old := b.all[o.vehicle]; ended && old.GetDrive() != o.drive {
 		return
 	}
-	delete(b.moved, o.vehicle)
+	for r := range b.readers {
+		delete(r.moved, o.vehicle)
+	}
 	b.all[o.vehicle] = &leadlinev1.FollowResponse{Vehicle: o.vehicle, Drive: o.drive, News: &leadlinev1.FollowResponse_Road{Road: &leadlinev1.FollowedRoad{Ended: ended}}}
 	b.news.tell()
 }
@@ -45,8 +54,10 @@ func (b *roadBook) drop(o *owner, moved bool) {
 		return // another one has taken its place
 	}
 	delete(b.all, o.vehicle)
-	if moved {
-		b.moved[o.vehicle] = true
+	for r := range b.readers {
+		if moved && r.told[o.vehicle] != nil {
+			r.moved[o.vehicle] = true
+		}
 	}
 	b.news.tell()
 }
@@ -55,9 +66,21 @@ func (b *roadBook) drop(o *owner, moved bool) {
 // told, so that nothing has to wait for it in line.
 type roadReader struct {
 	book *roadBook // nil tells of nothing
-	told map[string]*leadlinev1.FollowResponse
-	wake <-chan struct{} // closed when there may be something to tell
-	next []*leadlinev1.FollowResponse
+	// Guarded by book.mu: what was told, and of that what another server goes on with,
+	// which tells of it.
+	told  map[string]*leadlinev1.FollowResponse
+	moved map[string]bool
+	wake  <-chan struct{} // closed when there may be something to tell
+	next  []*leadlinev1.FollowResponse
+}
+
+// close has the book forget the reader.
+func (r *roadReader) close() {
+	if b := r.book; b != nil {
+		b.mu.Lock()
+		defer b.mu.Unlock()
+		delete(b.readers, r)
+	}
 }
 
 // take returns what to tell next; nil if there is nothing until wake.
@@ -86,10 +109,11 @@ func (r *roadReader) look() {
 		if b.all[name] != nil {
 			continue
 		}
-		if was := r.told[name]; !b.moved[name] {
+		if was := r.told[name]; !r.moved[name] {
 			r.next = append(r.next, &leadlinev1.FollowResponse{Vehicle: name, Drive: was.GetDrive(), News: &leadlinev1.FollowResponse_Road{Road: &leadlinev1.FollowedRoad{Ended: was.GetRoad().GetEnded(), Gone: true}}})
 		}
 		delete(r.told, name)
+		delete(r.moved, name)
 	}
 	for _, name := range slices.Sorted(maps.Keys(b.all)) {
 		if now := b.all[name]; r.told[name] != now {

@@ -86,3 +86,47 @@ func TestFollowRoads(t *testing.T) {
 		t.Errorf("without roads: %v, %v", m, err)
 	}
 }
+
+// TestRoadsMove: of a road that another server goes on with a reader is not told that it is
+// gone, and nothing of it is kept once the readers have looked; one that is here again and
+// then dropped is gone.
+func TestRoadsMove(t *testing.T) {
+	b := newRoadBook()
+	r := b.reader()
+	road := func(name string) *owner { return &owner{vehicle: name, drive: "1"} }
+	take := func() (out []string) {
+		for m := r.take(); m != nil; m = r.take() {
+			out = append(out, fmt.Sprintf("%s %v", m.GetVehicle(), m.GetRoad().GetGone()))
+		}
+		return out
+	}
+	is := func(want ...string) {
+		t.Helper()
+		if got := take(); !slices.Equal(got, want) {
+			t.Errorf("told %q, want %q", got, want)
+		}
+	}
+	for _, name := range []string{"a", "b", "c"} {
+		b.put(road(name), false)
+	}
+	is("a false", "b false", "c false")
+	for i := range 100 { // as partitions come and go
+		b.put(road(fmt.Sprint("d", i)), false)
+		b.drop(road(fmt.Sprint("d", i)), true)
+	}
+	b.drop(road("a"), true)
+	b.drop(road("b"), true)
+	b.drop(road("c"), false)
+	b.put(road("b"), false)
+	b.drop(road("b"), false)
+	is("b true", "c true")
+	if len(r.told) > 0 || len(r.moved) > 0 || len(b.all) > 0 {
+		t.Errorf("told %v, moved %v, all %v are kept", r.told, r.moved, b.all)
+	}
+	b.put(road("a"), false)
+	is("a false")
+	r.close()
+	if len(b.readers) > 0 {
+		t.Error("a reader that is over is kept")
+	}
+}

@@ -1,13 +1,14 @@
 package server
 
 import (
+	"runtime"
 	"sync"
 	"sync/atomic"
 )
 
-// searchesAtOnce on a whole server: each takes a core for seconds, and what a
-// thousand openings take of memory.
-const searchesAtOnce = 2
+// searchesAtOnce is how many of a whole server run: each takes a core for seconds, of
+// which half are left to the others, and what a thousand openings take of memory.
+func searchesAtOnce() int { return max(1, min(2, runtime.GOMAXPROCS(0)/2)) }
 
 // searches runs what a session has done beside it, such as a search of the whole
 // map: elsewhere than on the owner's goroutine, which goes on with measurements

@@ -157,7 +157,7 @@ func newServer(cfg Config) *Server {
 		health:      health.NewServer(),
 		openings:    make(chan struct{}, cfg.Limits.Openings),
 		predictions: make(chan struct{}, cfg.Limits.Predictions),
-		searching:   make(chan struct{}, searchesAtOnce),
+		searching:   make(chan struct{}, searchesAtOnce()),
 		drawing:     make(chan struct{}, drawnAtOnce),
 		forecasting: make(chan struct{}, forecastsAtOnce),
 		draining:    make(chan struct{}),

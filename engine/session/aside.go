@@ -26,6 +26,7 @@ type aside struct {
 	// woke is when the last quiet of more than quietAfterS ended; search is on
 	// its way, nil for none, and searched when the last one came in.
 	woke, searched sensor.Time
+	tries          int // searches since the vehicle was located, or woke
 	search         *search
 	named          int // the search of a checkpoint, by its number from 1
 }
@@ -61,7 +62,7 @@ func (a *aside) raise(p *summary.Posterior) bool {
 	case p.Lost >= alarmFrom:
 		a.alarm = true
 	case p.Status == summary.Located:
-		a.alarm = false
+		a.alarm, a.tries = false, 0
 	}
 	return a.alarm
 }
@@ -146,7 +147,7 @@ func (s *Session) lose(dt float64, moves bool) {
 	rate := float64(s.rates.lost*dt) + float64(s.rates.moved*(math.Max(a.quietS-quietAfterS, 0)-before))
 	if moves {
 		if a.quietS-dt > quietAfterS {
-			a.woke = s.motion.From
+			a.woke, a.tries = s.motion.From, 0
 		}
 		a.quietS = 0
 	}

@@ -3,6 +3,7 @@ package session
 import (
 	"math"
 	"math/rand/v2"
+	"slices"
 	"testing"
 
 	"leadline/engine/filter"
@@ -122,6 +123,48 @@ func TestRatesOfNothing(t *testing.T) {
 		if p.Mass[i] != q.Mass[i] || p.North[i] != q.North[i] {
 			t.Fatalf("entry %d differs", i)
 		}
+	}
+}
+
+// TestSearchesPause: a vehicle that stays lost is searched for after ever longer pauses,
+// up to a bound; once it has been located, or drives on after a long stop, as at first.
+func TestSearchesPause(t *testing.T) {
+	road := straight(1000)
+	c := Config{Space: road, Names: road, Start: pointStart(road, geo.Point{N: 100}, 3)}
+	begun := 0
+	c.Begin = func(func()) (wait func()) { begun++; return func() {} }
+	s := open(t, c)
+	a := &s.state.aside
+	pauses := func(seconds int) (out []int) { // between one that is let in and the next
+		last := 0
+		for i := range seconds {
+			s.state.time = s.state.time + at(1) - at(0)
+			a.lost = 0.5
+			was, n := a.search, begun
+			s.look()
+			if begun > n && last > 0 {
+				out = append(out, i-last)
+			}
+			if was != nil && a.search == nil {
+				last = i
+			}
+		}
+		return out
+	}
+	s.state.time = at(0)
+	if got, want := pauses(2400), []int{60, 120, 240, 480, 480, 480, 480}; !slices.Equal(got, want) {
+		t.Errorf("pauses of %v s, want %v", got, want)
+	}
+	a.alarm = a.raise(&summary.Posterior{Status: summary.Located})
+	s.state.time += sensor.Time(searchMostS * 1e9)
+	if got, want := pauses(400), []int{60, 120}; !slices.Equal(got, want) {
+		t.Errorf("once it was located: pauses of %v s, want %v", got, want)
+	}
+	a.quietS = 2 * quietAfterS
+	s.lose(1, true)
+	s.state.time += sensor.Time(searchMostS * 1e9)
+	if got, want := pauses(400), []int{60, 120}; !slices.Equal(got, want) {
+		t.Errorf("after a stop: pauses of %v s, want %v", got, want)
 	}
 }
 

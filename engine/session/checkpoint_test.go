@@ -134,7 +134,7 @@ func TestFieldsOfCheckpoints(t *testing.T) {
 	}{
 		{Session{}, 54},
 		{state{}, 22},
-		{aside{}, 10},
+		{aside{}, 11},
 		{snapshot{}, 3},
 		{log{}, 7},
 		{source{}, 3},

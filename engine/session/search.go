@@ -21,7 +21,10 @@ import (
 // It enters enterAfterS after the alarm, by the events' time, and the session
 // waits for it then: whoever runs it meanwhile elsewhere (Config.Begin) changes
 // when the answer comes and not what it is. The next one begins searchAgainS
-// later at the earliest. A session that itself began anywhere is as good as a search
+// later at the earliest, and each after that twice as much later as the one before, up to
+// searchMostS: what the first ones did not find is hardly on the map, and other vehicles
+// want the processors. That begins anew once the vehicle has been located, or drives on
+// after a long stop. A session that itself began anywhere is as good as a search
 // of the same events: its first one leaves the first searchAgainS out.
 const (
 	searchBackS  = 300.0
@@ -29,6 +32,7 @@ const (
 	enterAfterS  = 5.0
 	searchFrom   = 0.05 // 1 less summary's share of a mode from which on a vehicle is located
 	searchAgainS = 60.0
+	searchMostS  = 480.0 // three doublings: a search of 15 s, as in a city, is then 3 % of a core
 )
 
 // search is one on its way. It is not changed once it is made.
@@ -62,9 +66,21 @@ func (s *Session) look() {
 		s.letIn(a.search)
 		a.search, a.searched = nil, st.time
 	case s.unheard: // a search's own
-	case a.search == nil && a.lost >= searchFrom && (a.searched == 0 || st.time.Seconds(a.searched) >= searchAgainS):
+	case a.search == nil && a.lost >= searchFrom && (a.searched == 0 || st.time.Seconds(a.searched) >= a.pauseS()):
 		a.search, a.alarm = s.begins(), true
+		a.tries++
 	}
+}
+
+// pauseS is how long after a search the next one may begin.
+func (a *aside) pauseS() float64 {
+	pause := searchAgainS
+	for range a.tries - 1 {
+		if pause *= 2; pause >= searchMostS {
+			return searchMostS
+		}
+	}
+	return pause
 }
 
 // begins makes the search of the present time.
