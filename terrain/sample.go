@@ -4,6 +4,7 @@ import (
 	"math"
 
 	"leadline/engine/geo"
+	"leadline/engine/kernel"
 )
 
 // Sample writes bilinear heights at frame points, their exact gradients (of
@@ -25,50 +26,65 @@ func (r *Raster) Sample(dst geo.Heights, eastM, northM []float64) {
 	if len(northM) != n || len(dst.HeightM) != n || bad(dst.SlopeE) || bad(dst.SlopeN) || bad(dst.VarianceM2) {
 		panic("terrain: Sample: slices of different lengths")
 	}
-	m, cols := r.mapping, r.grid.Cols
-	lastC, lastR := float64(cols-1), float64(r.grid.Rows-1)
-	variance := r.meta.SigmaM * r.meta.SigmaM
-	slopes := dst.SlopeE != nil || dst.SlopeN != nil
-	for k, e := range eastM {
-		fe, fn := float64((e-m.min.E)*m.perM), float64((northM[k]-m.min.N)*m.perM)
-		var h, se, sn float64
-		known := false
-		if fe >= 0 && fe <= m.limE && fn >= 0 && fn <= m.limN {
-			i, j := min(int(fe), m.nE-1), min(int(fn), m.nN-1)
-			p := &m.patches[j*m.nE+i]
-			col, cu, cv := p.col.eval(fe-float64(i), fn-float64(j))
-			row, ru, rv := p.row.eval(fe-float64(i), fn-float64(j))
-			if col >= -r.slackC && col <= lastC+r.slackC && row >= -r.slackR && row <= lastR+r.slackR {
-				c := max(0, min(int(col), cols-2))
-				w := max(0, min(int(row), r.grid.Rows-2))
-				u, v := col-float64(c), row-float64(w)
-				at := w*cols + c
-				north, south := r.heights[at:at+2:at+2], r.heights[at+cols:at+cols+2:at+cols+2]
-				h00 := float64(north[0])
-				dc, dr := float64(north[1])-h00, float64(south[0])-h00
-				twist := float64(south[1]) - float64(south[0]) - dc
-				h = h00 + float64(u*dc) + float64(v*dr) + float64(u*v*twist)
-				known = h == h
-				if slopes && known {
-					hc, hr := (dc+float64(v*twist))*m.perM, (dr+float64(u*twist))*m.perM
-					se = float64(hc*cu) + float64(hr*ru)
-					sn = float64(hc*cv) + float64(hr*rv)
+	m := r.mapping
+	var p kernel.Patch
+	for k := 0; k < n; {
+		fe, fn := float64((eastM[k]-m.min.E)*m.perM), float64((northM[k]-m.min.N)*m.perM)
+		if !(fe >= 0 && fe <= m.limE && fn >= 0 && fn <= m.limN) {
+			dst.HeightM[k] = math.NaN()
+			for _, slope := range [2][]float64{dst.SlopeE, dst.SlopeN} {
+				if slope != nil {
+					slope[k] = 0
 				}
 			}
+			k++
+			continue
 		}
-		x := variance
-		if !known {
-			h, x = math.NaN(), 0
+		r.patch(&p, min(int(fe), m.nE-1), min(int(fn), m.nN-1))
+		if dst.SlopeE != nil && dst.SlopeN != nil {
+			k += p.Sample(dst.HeightM[k:], dst.SlopeE[k:], dst.SlopeN[k:], eastM[k:], northM[k:])
+			continue
 		}
-		dst.HeightM[k] = h
+		var slopeE, slopeN [64]float64
+		to := min(k+len(slopeE), n)
+		done := p.Sample(dst.HeightM[k:to], slopeE[:], slopeN[:], eastM[k:to], northM[k:to])
 		if dst.SlopeE != nil {
-			dst.SlopeE[k] = se
+			copy(dst.SlopeE[k:], slopeE[:done])
 		}
 		if dst.SlopeN != nil {
-			dst.SlopeN[k] = sn
+			copy(dst.SlopeN[k:], slopeN[:done])
 		}
-		if dst.VarianceM2 != nil {
-			dst.VarianceM2[k] = x
+		k += done
+	}
+	if dst.VarianceM2 == nil {
+		return
+	}
+	variance := r.meta.SigmaM * r.meta.SigmaM
+	for k, h := range dst.HeightM {
+		dst.VarianceM2[k] = 0
+		if h == h {
+			dst.VarianceM2[k] = variance
 		}
+	}
+}
+
+// patch makes p the one of a column and row of the mapping's; what lies at its last edges
+// is in the last ones.
+func (r *Raster) patch(p *kernel.Patch, i, j int) {
+	m := r.mapping
+	end := func(i, n int) float64 {
+		if i == n-1 {
+			return math.Nextafter(float64(n), math.Inf(1))
+		}
+		return float64(i + 1)
+	}
+	of := &m.patches[j*m.nE+i]
+	*p = kernel.Patch{
+		MinE: m.min.E, MinN: m.min.N, PerM: m.perM,
+		LowE: float64(i), HighE: end(i, m.nE), LowN: float64(j), HighN: end(j, m.nN),
+		Col: of.col, Row: of.row,
+		LeastCol: -r.slackC, MostCol: float64(r.grid.Cols-1) + r.slackC,
+		LeastRow: -r.slackR, MostRow: float64(r.grid.Rows-1) + r.slackR,
+		Heights: r.heights, Cols: r.grid.Cols, Rows: r.grid.Rows,
 	}
 }

@@ -76,14 +76,27 @@ func (b *Belief) weighed(w *Workspace) {
 // locateCells sets w.cells to the cells of a tile that have mass, and w.at to their
 // centres.
 func (w *Workspace) locateCells(wants Wants, l Lattice, t TileAt, tile []float64) {
-	w.cells = w.cells[:0]
+	w.cells = resize(w.cells, tileCells)
+	n := 0
 	for x, v := range tile {
+		w.cells[n] = uint16(x)
 		if v != 0 {
-			w.cells = append(w.cells, uint16(x))
+			n++
 		}
 	}
+	w.cells = w.cells[:n]
 	east, north := l.axes(t)
-	w.at.Resize(wants, 2, len(w.cells))
+	w.at.Resize(wants, 2, n)
+	if n == tileCells {
+		for r, y := range north {
+			row := w.at.North[r*TileSide:][:TileSide]
+			for c := range row {
+				row[c] = y
+			}
+			copy(w.at.East[r*TileSide:], east[:])
+		}
+		return
+	}
 	for j, x := range w.cells {
 		w.at.East[j], w.at.North[j] = east[x%TileSide], north[x/TileSide]
 	}

@@ -53,3 +53,7 @@ func normalFraction(x []float64) { normalFractionPlain(x, 0) }
 func beyond(sum *[4]float64, mass, w2, v, is []float64, r2, excess float64) {
 	beyondPlain(sum, mass, w2, v, is, r2, excess, 0)
 }
+
+func samplePatch(p *Patch, height, slopeE, slopeN, east, north []float64) int {
+	return samplePatchPlain(p, height, slopeE, slopeN, east, north, 0)
+}

@@ -177,3 +177,15 @@ func beyond(sum *[4]float64, mass, w2, v, is []float64, r2, excess float64) {
 	}
 	beyondPlain(sum, mass, w2, v, is, r2, excess, n)
 }
+
+func samplePatch(p *Patch, height, slopeE, slopeN, east, north []float64) int {
+	n := 0
+	// Places in a raster are numbers of 32 bits there, and preparing costs as much as a few.
+	if vectors && len(height) > 7 && len(p.Heights) < 1<<29 && p.Cols > 1 && p.Rows > 1 && p.Cols <= len(p.Heights)/p.Rows {
+		if !p.prepared {
+			p.prepare()
+		}
+		n = samplePatchAVX2(&height[0], &slopeE[0], &slopeN[0], &east[0], &north[0], &p.lanes[0], &p.Heights[0], len(height)&^3, p.Cols, p.Rows-2)
+	}
+	return samplePatchPlain(p, height, slopeE, slopeN, east, north, n)
+}

@@ -88,3 +88,8 @@ func normalFractionAVX2(x *float64, n int)
 //
 //go:noescape
 func beyondAVX2(sum *float64, mass *float64, w2 *float64, v *float64, is *float64, table *float64, n int, r2 float64, excess float64)
+
+// samplePatchAVX2 is samplePatchPlain for n places, a multiple of 4, up to the first four of which one is outside the box; lanes are Patch.lanes, lastRow two less than its rows.
+//
+//go:noescape
+func samplePatchAVX2(height *float64, slopeE *float64, slopeN *float64, east *float64, north *float64, lanes *float64, heights *float32, n int, cols int, lastRow int) (done int)

@@ -1907,3 +1907,198 @@ DATA quickEnd<>+8(SB)/8, $0x4022000000000000
 DATA quickEnd<>+16(SB)/8, $0x4022000000000000
 DATA quickEnd<>+24(SB)/8, $0x4022000000000000
 GLOBL quickEnd<>(SB), RODATA|NOPTR, $32
+
+// func samplePatchAVX2(height *float64, slopeE *float64, slopeN *float64, east *float64, north *float64, lanes *float64, heights *float32, n int, cols int, lastRow int) (done int)
+// Requires: AVX
+TEXT ·samplePatchAVX2(SB), NOSPLIT, $0-88
+	MOVQ height+0(FP), AX
+	MOVQ slopeE+8(FP), CX
+	MOVQ slopeN+16(FP), DX
+	MOVQ east+24(FP), BX
+	MOVQ north+32(FP), SI
+	MOVQ lanes+40(FP), DI
+	MOVQ heights+48(FP), R8
+	MOVQ cols+64(FP), R9
+	XORQ R10, R10
+
+next:
+	MOVQ        n+56(FP), R11
+	CMPQ        R10, R11
+	JGE         done
+	VMOVUPD     (BX)(R10*8), Y0
+	VSUBPD      (DI), Y0, Y0
+	VMULPD      64(DI), Y0, Y0
+	VCMPPD      $0x1d, 96(DI), Y0, Y3
+	VMOVAPD     Y3, Y2
+	VCMPPD      $0x11, 128(DI), Y0, Y3
+	VANDPD      Y3, Y2, Y2
+	VSUBPD      96(DI), Y0, Y0
+	VMOVUPD     (SI)(R10*8), Y1
+	VSUBPD      32(DI), Y1, Y1
+	VMULPD      64(DI), Y1, Y1
+	VCMPPD      $0x1d, 160(DI), Y1, Y3
+	VANDPD      Y3, Y2, Y2
+	VCMPPD      $0x11, 192(DI), Y1, Y3
+	VANDPD      Y3, Y2, Y2
+	VSUBPD      160(DI), Y1, Y1
+	VMOVMSKPD   Y2, R11
+	CMPL        R11, $0x0f
+	JNE         done
+	VADDPD      Y0, Y0, Y2
+	VMULPD      288(DI), Y0, Y3
+	VADDPD      256(DI), Y3, Y3
+	VMULPD      Y3, Y0, Y3
+	VADDPD      224(DI), Y3, Y3
+	VMULPD      288(DI), Y2, Y4
+	VADDPD      256(DI), Y4, Y4
+	VMULPD      384(DI), Y0, Y5
+	VADDPD      352(DI), Y5, Y5
+	VMULPD      Y5, Y0, Y5
+	VADDPD      320(DI), Y5, Y5
+	VMULPD      384(DI), Y2, Y6
+	VADDPD      352(DI), Y6, Y6
+	VMULPD      480(DI), Y0, Y7
+	VADDPD      448(DI), Y7, Y7
+	VMULPD      Y7, Y0, Y7
+	VADDPD      416(DI), Y7, Y7
+	VMULPD      480(DI), Y2, Y8
+	VADDPD      448(DI), Y8, Y8
+	VMULPD      Y7, Y1, Y9
+	VADDPD      Y9, Y5, Y9
+	VMULPD      Y9, Y1, Y9
+	VADDPD      Y9, Y3, Y3
+	VMULPD      Y8, Y1, Y8
+	VADDPD      Y8, Y6, Y6
+	VMULPD      Y6, Y1, Y6
+	VADDPD      Y6, Y4, Y4
+	VADDPD      Y1, Y1, Y9
+	VMULPD      Y7, Y9, Y7
+	VADDPD      Y7, Y5, Y5
+	VCMPPD      $0x1d, 800(DI), Y3, Y7
+	VMOVAPD     Y7, Y6
+	VCMPPD      $0x12, 832(DI), Y3, Y7
+	VANDPD      Y7, Y6, Y6
+	VPXOR       X7, X7, X7
+	LEAQ        -2(R9), R11
+	VMOVD       R11, X8
+	VPSHUFD     $0x00, X8, X8
+	VCVTTPD2DQY Y3, X9
+	VPMINSD     X8, X9, X9
+	VPMAXSD     X7, X9, X9
+	VCVTDQ2PD   X9, Y8
+	VSUBPD      Y8, Y3, Y3
+	VMULPD      576(DI), Y0, Y10
+	VADDPD      544(DI), Y10, Y10
+	VMULPD      Y10, Y0, Y10
+	VADDPD      512(DI), Y10, Y10
+	VMULPD      576(DI), Y2, Y11
+	VADDPD      544(DI), Y11, Y11
+	VMULPD      672(DI), Y0, Y12
+	VADDPD      640(DI), Y12, Y12
+	VMULPD      Y12, Y0, Y12
+	VADDPD      608(DI), Y12, Y12
+	VMULPD      672(DI), Y2, Y8
+	VADDPD      640(DI), Y8, Y8
+	VMULPD      768(DI), Y0, Y13
+	VADDPD      736(DI), Y13, Y13
+	VMULPD      Y13, Y0, Y13
+	VADDPD      704(DI), Y13, Y13
+	VMULPD      768(DI), Y2, Y0
+	VADDPD      736(DI), Y0, Y0
+	VMULPD      Y13, Y1, Y2
+	VADDPD      Y2, Y12, Y2
+	VMULPD      Y2, Y1, Y2
+	VADDPD      Y2, Y10, Y10
+	VMULPD      Y0, Y1, Y0
+	VADDPD      Y0, Y8, Y8
+	VMULPD      Y8, Y1, Y8
+	VADDPD      Y8, Y11, Y11
+	VADDPD      Y1, Y1, Y2
+	VMULPD      Y13, Y2, Y13
+	VADDPD      Y13, Y12, Y12
+	VCMPPD      $0x1d, 864(DI), Y10, Y0
+	VANDPD      Y0, Y6, Y6
+	VCMPPD      $0x12, 896(DI), Y10, Y0
+	VANDPD      Y0, Y6, Y6
+	MOVQ        lastRow+72(FP), R11
+	VMOVD       R11, X8
+	VPSHUFD     $0x00, X8, X8
+	VCVTTPD2DQY Y10, X0
+	VPMINSD     X8, X0, X0
+	VPMAXSD     X7, X0, X0
+	VCVTDQ2PD   X0, Y1
+	VSUBPD      Y1, Y10, Y10
+	VMOVD       R9, X8
+	VPSHUFD     $0x00, X8, X8
+	VPMULLD     X8, X0, X0
+	VPADDD      X9, X0, X0
+	VPEXTRD     $0x00, X0, R11
+	VPEXTRD     $0x01, X0, R12
+	VMOVSD      (R8)(R11*4), X1
+	VMOVHPS     (R8)(R12*4), X1, X1
+	VPEXTRD     $0x02, X0, R11
+	VPEXTRD     $0x03, X0, R12
+	VMOVSD      (R8)(R11*4), X2
+	VMOVHPS     (R8)(R12*4), X2, X2
+	VSHUFPS     $0x88, X2, X1, X7
+	VCVTPS2PD   X7, Y8
+	VSHUFPS     $0xdd, X2, X1, X7
+	VCVTPS2PD   X7, Y1
+	VSUBPD      Y8, Y1, Y1
+	LEAQ        (R8)(R9*4), R13
+	VPEXTRD     $0x00, X0, R11
+	VPEXTRD     $0x01, X0, R12
+	VMOVSD      (R13)(R11*4), X2
+	VMOVHPS     (R13)(R12*4), X2, X2
+	VPEXTRD     $0x02, X0, R11
+	VPEXTRD     $0x03, X0, R12
+	VMOVSD      (R13)(R11*4), X0
+	VMOVHPS     (R13)(R12*4), X0, X0
+	VSHUFPS     $0x88, X0, X2, X7
+	VCVTPS2PD   X7, Y9
+	VSHUFPS     $0xdd, X0, X2, X7
+	VCVTPS2PD   X7, Y0
+	VSUBPD      Y9, Y0, Y0
+	VSUBPD      Y1, Y0, Y0
+	VSUBPD      Y8, Y9, Y9
+	VMULPD      Y1, Y3, Y2
+	VADDPD      Y2, Y8, Y8
+	VMULPD      Y9, Y10, Y2
+	VADDPD      Y2, Y8, Y8
+	VMULPD      Y10, Y3, Y2
+	VMULPD      Y0, Y2, Y2
+	VADDPD      Y2, Y8, Y8
+	VCMPPD      $0x00, Y8, Y8, Y2
+	VANDPD      Y2, Y6, Y6
+	VMULPD      Y0, Y10, Y2
+	VADDPD      Y2, Y1, Y1
+	VMULPD      64(DI), Y1, Y1
+	VMULPD      Y0, Y3, Y2
+	VADDPD      Y2, Y9, Y9
+	VMULPD      64(DI), Y9, Y9
+	VMULPD      Y4, Y1, Y4
+	VMULPD      Y11, Y9, Y11
+	VADDPD      Y11, Y4, Y4
+	VANDPD      Y6, Y4, Y4
+	VMOVUPD     Y4, (CX)(R10*8)
+	VMULPD      Y5, Y1, Y5
+	VMULPD      Y12, Y9, Y12
+	VADDPD      Y12, Y5, Y5
+	VANDPD      Y6, Y5, Y5
+	VMOVUPD     Y5, (DX)(R10*8)
+	VMOVUPD     unknown<>+0(SB), Y2
+	VBLENDVPD   Y6, Y8, Y2, Y8
+	VMOVUPD     Y8, (AX)(R10*8)
+	ADDQ        $0x04, R10
+	JMP         next
+
+done:
+	MOVQ R10, done+80(FP)
+	VZEROUPPER
+	RET
+
+DATA unknown<>+0(SB)/8, $0x7ff8000000000001
+DATA unknown<>+8(SB)/8, $0x7ff8000000000001
+DATA unknown<>+16(SB)/8, $0x7ff8000000000001
+DATA unknown<>+24(SB)/8, $0x7ff8000000000001
+GLOBL unknown<>(SB), RODATA|NOPTR, $32

@@ -188,6 +188,10 @@ func (l *heights) Linearize(t *filter.Terms, at *filter.Columns, qs []filter.Qua
 		l.plane.Sample(&l.beside)
 		ground = &l.beside
 	}
+	if ground == at && l.arm.zero() && len(l.offsets) == 0 && !l.nearest && at.Dim == 2 && k == 2 {
+		l.below(t, at)
+		return
+	}
 	for i, h := range ground.Height {
 		if h != h {
 			t.Flat[i] = l.flat
@@ -211,5 +215,24 @@ func (l *heights) Linearize(t *filter.Terms, at *filter.Columns, qs []filter.Qua
 			t.Residual[i] -= float64(o.by * mean[i*k+o.quantity])
 			row[o.quantity] = o.by
 		}
+	}
+}
+
+// below is Linearize for what is measured straight below on a plane, in which nothing but
+// the position enters, as on a lattice: the same to the bit.
+func (l *heights) below(t *filter.Terms, at *filter.Columns) {
+	n := at.Len()
+	slopeE, slopeN, variance := at.SlopeE[:n], at.SlopeN[:n], at.HeightVar[:n]
+	residual, extra, row, flat := t.Residual[:n], t.Extra[:n], t.Row[:2*n], t.Flat[:n]
+	mine := l.slopeVar + l.arm.unknownVar
+	for i, h := range at.Height[:n] {
+		if h != h {
+			flat[i] = l.flat
+			continue
+		}
+		sE, sN := slopeE[i], slopeN[i]
+		residual[i] = l.topM - h - l.distanceM
+		extra[i] = float64(l.mapFactor*variance[i]) + float64((float64(sE*sE)+float64(sN*sN))*mine) + l.tiltVar
+		row[2*i], row[2*i+1] = sE, sN
 	}
 }

@@ -31,5 +31,6 @@ func main() {
 	normalSeries(c)
 	normalFraction(c)
 	beyond(c)
+	samplePatch(c)
 	Generate()
 }

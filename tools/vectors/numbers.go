@@ -12,9 +12,9 @@ import (
 )
 
 // number is a constant in all lanes.
-func number(name string, x float64) Mem { return lanes(name, math.Float64bits(x)) }
+func number(name string, x float64) Mem { return allLanes(name, math.Float64bits(x)) }
 
-func lanes(name string, x uint64) Mem {
+func allLanes(name string, x uint64) Mem {
 	m := GLOBL(name, RODATA|NOPTR)
 	for i := range 4 {
 		DATA(8*i, U64(x))
@@ -37,11 +37,11 @@ func constants() *numbers {
 		half: number("half", 0.5), one: number("one", 1), two: number("two", 2),
 		hi: number("ln2High", 6.93147180369123816490e-01), lo: number("ln2Low", 1.90821492927058770002e-10),
 		expLeast: number("expLeast", -745.2), expClamp: number("expClamp", -746), perLn2: number("perLn2", 1/math.Ln2),
-		expLowest: number("expLowest", -1021), bias: lanes("expBias", 1023),
-		fraction: lanes("fraction", 1<<52-1), halfExponent: lanes("halfExponent", 1022<<52),
+		expLowest: number("expLowest", -1021), bias: allLanes("expBias", 1023),
+		fraction: allLanes("fraction", 1<<52-1), halfExponent: allLanes("halfExponent", 1022<<52),
 		float52: number("float52", 1<<52), halfBits: number("halfBits", 1<<52+1022), rootHalf: number("rootHalf", math.Sqrt2/2),
 		minusHalf: number("minusHalf", -0.5), logZ: number("logSqrt2Pi", 0.918938533204672741780329736406),
-		signBit: lanes("signBit", 1<<63),
+		signBit: allLanes("signBit", 1<<63),
 	}
 	factorial := 1.0
 	for i := 2; i <= 13; i++ {
