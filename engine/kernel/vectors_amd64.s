@@ -1618,33 +1618,70 @@ TEXT ·normalSeriesAVX2(SB), NOSPLIT, $0-16
 	MOVQ x+0(FP), AX
 	MOVQ n+8(FP), CX
 
-next:
-	TESTQ   CX, CX
-	JZ      done
-	VMOVUPD (AX), Y0
-	VMOVAPD Y0, Y1
-	VMULPD  Y0, Y0, Y2
-	VMOVUPD three<>+0(SB), Y3
+eight:
+	CMPQ    CX, $0x08
+	JB      eightDone
+	VMOVUPD (AX), Y1
+	VMOVAPD Y1, Y2
+	VMULPD  Y1, Y1, Y3
+	VMOVUPD 32(AX), Y5
+	VMOVAPD Y5, Y6
+	VMULPD  Y5, Y5, Y7
+	VMOVUPD three<>+0(SB), Y0
 
-term:
-	VMULPD    seriesLeast<>+0(SB), Y1, Y4
-	VCMPPD    $0x1e, Y4, Y0, Y4
+eightTerm:
+	VMULPD    seriesLeast<>+0(SB), Y2, Y4
+	VCMPPD    $0x1e, Y4, Y1, Y4
+	VMULPD    seriesLeast<>+0(SB), Y6, Y8
+	VCMPPD    $0x1e, Y8, Y5, Y8
+	VORPD     Y8, Y4, Y4
 	VMOVMSKPD Y4, DX
 	TESTL     DX, DX
-	JZ        summed
-	VMULPD    Y2, Y0, Y0
-	VDIVPD    Y3, Y0, Y0
-	VADDPD    Y0, Y1, Y1
-	VADDPD    two<>+0(SB), Y3, Y3
-	JMP       term
+	JZ        eightSummed
+	VMULPD    Y3, Y1, Y1
+	VDIVPD    Y0, Y1, Y1
+	VADDPD    Y1, Y2, Y2
+	VMULPD    Y7, Y5, Y5
+	VDIVPD    Y0, Y5, Y5
+	VADDPD    Y5, Y6, Y6
+	VADDPD    two<>+0(SB), Y0, Y0
+	JMP       eightTerm
 
-summed:
-	VMOVUPD Y1, (AX)
+eightSummed:
+	VMOVUPD Y2, (AX)
+	VMOVUPD Y6, 32(AX)
+	ADDQ    $0x40, AX
+	SUBQ    $0x08, CX
+	JMP     eight
+
+eightDone:
+four:
+	CMPQ    CX, $0x04
+	JB      fourDone
+	VMOVUPD (AX), Y1
+	VMOVAPD Y1, Y2
+	VMULPD  Y1, Y1, Y3
+	VMOVUPD three<>+0(SB), Y0
+
+fourTerm:
+	VMULPD    seriesLeast<>+0(SB), Y2, Y4
+	VCMPPD    $0x1e, Y4, Y1, Y4
+	VMOVMSKPD Y4, DX
+	TESTL     DX, DX
+	JZ        fourSummed
+	VMULPD    Y3, Y1, Y1
+	VDIVPD    Y0, Y1, Y1
+	VADDPD    Y1, Y2, Y2
+	VADDPD    two<>+0(SB), Y0, Y0
+	JMP       fourTerm
+
+fourSummed:
+	VMOVUPD Y2, (AX)
 	ADDQ    $0x20, AX
 	SUBQ    $0x04, CX
-	JMP     next
+	JMP     four
 
-done:
+fourDone:
 	VZEROUPPER
 	RET
 

@@ -5,10 +5,11 @@ package main
 import (
 	. "github.com/mmcloughlin/avo/build"
 	. "github.com/mmcloughlin/avo/operand"
+	. "github.com/mmcloughlin/avo/reg"
 )
 
-// normalSeries is kernel.normalSum: four at a time, until none has a term left that
-// changes its sum; more of them change the others' no more.
+// normalSeries is kernel.normalSum: eight at a time, then four, until none has a term left
+// that changes its sum; more of them change the others' no more.
 func normalSeries(c *numbers) {
 	TEXT("normalSeriesAVX2", NOSPLIT, "func(x *float64, n int)")
 	Pragma("noescape")
@@ -16,26 +17,50 @@ func normalSeries(c *numbers) {
 	x, n := Load(Param("x"), GP64()), Load(Param("n"), GP64())
 	least, three := number("seriesLeast", 1e-18), number("three", 3)
 	left := GP32()
-	loop(n, func() {
-		term, sum, z, by, most := YMM(), YMM(), YMM(), YMM(), YMM()
-		VMOVUPD(Mem{Base: x}, term)
-		VMOVAPD(term, sum)
-		VMULPD(term, term, z)
+	block := func(name string, vectors int) {
+		Label(name)
+		CMPQ(n, Imm(uint64(4*vectors)))
+		JB(LabelRef(name + "Done"))
+		term, sum, z, most := make([]VecVirtual, vectors), make([]VecVirtual, vectors), make([]VecVirtual, vectors), make([]VecVirtual, vectors)
+		by := YMM()
+		for i := range vectors {
+			term[i], sum[i], z[i], most[i] = YMM(), YMM(), YMM(), YMM()
+			VMOVUPD(Mem{Base: x, Disp: 32 * i}, term[i])
+			VMOVAPD(term[i], sum[i])
+			VMULPD(term[i], term[i], z[i])
+		}
 		VMOVUPD(three, by)
-		Label("term")
-		VMULPD(least, sum, most)
-		VCMPPD(Imm(0x1e), most, term, most) // term > least·sum
-		VMOVMSKPD(most, left)
+		Label(name + "Term")
+		for i := range vectors {
+			VMULPD(least, sum[i], most[i])
+			VCMPPD(Imm(0x1e), most[i], term[i], most[i]) // term > least·sum
+			if i > 0 {
+				VORPD(most[i], most[0], most[0])
+			}
+		}
+		VMOVMSKPD(most[0], left)
 		TESTL(left, left)
-		JZ(LabelRef("summed"))
-		VMULPD(z, term, term)
-		VDIVPD(by, term, term)
-		VADDPD(term, sum, sum)
+		JZ(LabelRef(name + "Summed"))
+		for i := range vectors {
+			VMULPD(z[i], term[i], term[i])
+			VDIVPD(by, term[i], term[i])
+			VADDPD(term[i], sum[i], sum[i])
+		}
 		VADDPD(c.two, by, by)
-		JMP(LabelRef("term"))
-		Label("summed")
-		VMOVUPD(sum, Mem{Base: x})
-	}, x)
+		JMP(LabelRef(name + "Term"))
+		Label(name + "Summed")
+		for i := range vectors {
+			VMOVUPD(sum[i], Mem{Base: x, Disp: 32 * i})
+		}
+		ADDQ(Imm(uint64(32*vectors)), x)
+		SUBQ(Imm(uint64(4*vectors)), n)
+		JMP(LabelRef(name))
+		Label(name + "Done")
+	}
+	block("eight", 2)
+	block("four", 1)
+	VZEROUPPER()
+	RET()
 }
 
 // normalFraction is kernel.millsInverse: four at a time, from the greatest depth, which
