@@ -18,8 +18,9 @@ import (
 
 // Everything here runs on the owner's goroutine.
 
-// batch has a batch recorded and then takes it, unless it is in already.
-func (o *owner) batch(b *leadlinev1.Batch) {
+// batch has a batch recorded and then takes it, unless it is in already. data is the
+// batch as it came, if it is there.
+func (o *owner) batch(b *leadlinev1.Batch, data []byte) {
 	if b.GetSequence() > 0 && b.GetSequence() <= o.submitted {
 		o.after(func() { o.receipt(&leadlinev1.Receipt{Sequence: o.sequence}) })
 		return
@@ -28,10 +29,12 @@ func (o *owner) batch(b *leadlinev1.Batch) {
 		o.after(func() { o.hangup(err) })
 		return
 	}
-	data, err := o.rec.encode(b)
-	if err != nil {
-		o.after(func() { o.hangup(badField("batch", "batch %d: %v", b.GetSequence(), err)) })
-		return
+	if data == nil {
+		var err error
+		if data, err = o.rec.encode(b); err != nil {
+			o.after(func() { o.hangup(badField("batch", "batch %d: %v", b.GetSequence(), err)) })
+			return
+		}
 	}
 	o.submitted = b.GetSequence()
 	o.record(kindBatch, data, func() { o.takeBatch(b) }, o.unrecorded)

@@ -17,8 +17,8 @@ type feedStream = grpc.BidiStreamingServer[leadlinev1.FeedRequest, leadlinev1.Fe
 
 // received is what a stream brought.
 type received struct {
-	message *leadlinev1.FeedRequest
-	err     error
+	arrival
+	err error
 }
 
 // Feed is the vehicle's stream: see the .proto file.
@@ -71,9 +71,10 @@ func (s *Server) Feed(stream feedStream) error {
 // opened tells the limit beforehand.
 func receive(ctx context.Context, stream feedStream, to chan<- received) {
 	for {
-		m, err := stream.Recv()
+		var a arrival
+		err := stream.RecvMsg(&a)
 		select {
-		case to <- received{m, err}:
+		case to <- received{a, err}:
 		case <-ctx.Done():
 			return
 		}
@@ -195,7 +196,7 @@ func request(r received) (work, error) {
 	case r.err != nil:
 		return work{}, r.err
 	case r.message.GetBatch() != nil:
-		return work{batch: r.message.GetBatch()}, nil
+		return work{batch: r.message.GetBatch(), bytes: r.batch}, nil
 	case r.message.GetEnd() != nil:
 		return work{end: true}, nil
 	case r.message.GetOpen() != nil:

@@ -79,6 +79,7 @@ type attachment struct {
 // work is what a stream hands to its owner.
 type work struct {
 	batch  *leadlinev1.Batch
+	bytes  []byte // of the batch, as it came; nil is that they are not there
 	end    bool
 	hangup bool  // the stream wants to be over, with err, once the rest is done
 	err    error // for hangup
@@ -303,6 +304,6 @@ func (o *owner) work(w work) {
 			o.hangup(nil)
 		})
 	default:
-		o.batch(w.batch)
+		o.batch(w.batch, w.bytes)
 	}
 }

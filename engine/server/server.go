@@ -96,7 +96,7 @@ func New(cfg Config) (*Server, error) {
 	s := newServer(cfg)
 	options := []grpc.ServerOption{
 		grpc.Creds(web.Credentials()),
-		grpc.MaxRecvMsgSize(cfg.Limits.MessageBytes),
+		grpc.ForceServerCodecV2(newFeedCodec()), grpc.MaxRecvMsgSize(cfg.Limits.MessageBytes),
 		grpc.MaxHeaderListSize(16 << 10),
 		// Of one connection: beyond, its calls wait unanswered, so that all
 		// the streams there may be, and some calls, must go through one.
