@@ -63,12 +63,9 @@ const leastMistaken = 1e-3
 // change over alignmentM stands where RoadAlignment has the difference from the
 // road, and its wide part is that of a turn, turnSigmaRad.
 //
-// A way that nobody knows may turn anywhere, and is taken to turn on bendingShare of
-// itself. Straight on it is worth ln 2.1 for each 5 m, 0.08 nats less than a road
-// that fits; a right angle costs some four nats for each 5 m of it. What is too
-// little straight on adds up: with turningShare in its place, which is of ways
-// through a junction, a vehicle that was not where it was believed to be was not
-// looked for, since a hundred metres of straight road were worth 8 nats against it.
+// On a straight way it is worth what a road that fits is, ln 1.4; a right angle
+// costs two nats for each 5 m of it, as roads that do not bend there cost, and
+// less than roads whose direction differs.
 func OwnWay(b Bend, travelledM float64) float64 {
 	power := math.Min(1, math.Abs(travelledM)/alignmentM)
 	if !(power > 0) {
@@ -76,17 +73,13 @@ func OwnWay(b Bend, travelledM float64) float64 {
 	}
 	n := filter.Noise{
 		Parts: []filter.NoisePart{
-			{Weight: 0.99 * (1 - bendingShare), Cov: [3]float64{followVar}},
-			{Weight: 0.99 * bendingShare, Cov: [3]float64{turnSigmaRad * turnSigmaRad}},
+			{Weight: 0.99 * (1 - turningShare), Cov: [3]float64{followVar}},
+			{Weight: 0.99 * turningShare, Cov: [3]float64{turnSigmaRad * turnSigmaRad}},
 		},
 		FlatWeight: 0.01, FlatDensity: 1 / (2 * math.Pi),
 	}
 	return power * logDensity(&n, math.Min(math.Abs(b.RadPerM)*alignmentM, math.Pi), 0)
 }
-
-// bendingShare of a way in a town is bends: a corner takes some 15 m, and there is
-// one each 150 m (practice; on simulated drives 11 %).
-const bendingShare = 0.1
 
 // turnSigmaRad is the spread of the headings in which ways go on at junctions:
 // between straight on and a right angle (practice).

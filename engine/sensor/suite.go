@@ -88,8 +88,7 @@ type Vehicle struct {
 	// roads: for a car park, a yard or a road that the map lacks. 1e-5 unless
 	// said, once in 100 km (practice); 0 says never, and nothing is kept of it.
 	// OnMapPerM is how often it takes to a mapped road, a metre that it moves on
-	// one and in its direction: 0.2 unless said, within some 5 m (practice): who is
-	// beside a road, in its direction, is on it.
+	// one and in its direction: 0.05 unless said, within some 20 m (practice).
 	// They have no meaning on a plane.
 	OffMapPerM *float64 `yaml:"off_map_per_m"`
 	OnMapPerM  *float64 `yaml:"on_map_per_m"`
@@ -263,7 +262,7 @@ func (s *Suite) For(dim int) *Suite {
 		}
 	}
 	rate(&v.OffMapPerM, 1e-5)
-	rate(&v.OnMapPerM, 0.2)
+	rate(&v.OnMapPerM, 0.05)
 	rate(&v.LostPerS, 1e-9)
 	rate(&v.MovedPerS, 1e-5)
 	or(&c.Environment.SeaLevelPressureHPa, isaP0HPa, isaP0HPa)
