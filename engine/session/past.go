@@ -90,7 +90,7 @@ func (p *past) open() *pastBlock {
 func (p *past) code(b *pastBlock, ev sensor.Event) {
 	var since sensor.Time
 	var value, sigma float64
-	turn := false
+	var turn bool
 	source := -1
 	switch m := ev.Measurement.(type) {
 	case sensor.Travel:
@@ -156,7 +156,7 @@ func (p *past) events(dst []sensor.Event, b *pastBlock) []sensor.Event {
 		var other [4]uint64
 		for i := range other {
 			if head&(otherTime<<i) != 0 {
-				n := 0
+				var n int
 				other[i], n = binary.Uvarint(c)
 				c = c[n:]
 			}
