@@ -135,15 +135,27 @@ func (u *turn) follow(best Best) Best {
 		u.followSpread(out, best)
 		return out
 	}
+	anywhere := math.Inf(-1)
+	if u.kind == blended {
+		anywhere = slices.Max(best)
+	}
 	for i, at := range u.then.At {
 		for x, m := range u.then.tile(i) {
 			out[i*tileCells+x] = math.Inf(-1)
 			if m > 0 {
 				_, out[i*tileCells+x] = u.bestCell(best, at.Col*TileSide+int32(x%TileSide), at.Row*TileSide+int32(x/TileSide))
 			}
+			if u.kind == blended {
+				out[i*tileCells+x] = math.Max(out[i*tileCells+x], anywhere+u.blendedIn(at.Col*TileSide+int32(x%TileSide), at.Row*TileSide+int32(x/TileSide)))
+			}
 		}
 	}
 	return out
+}
+
+// blendedIn is the log of the mass that a cell got from elsewhere.
+func (u *turn) blendedIn(col, row int32) float64 {
+	return kernel.Log(max(u.then.cell(col, row)-(1-u.share)*u.tiles.cell(col, row), 0))
 }
 
 // followSpread is follow for a direction of a spread, tile by tile.
@@ -232,6 +244,8 @@ func (u *turn) bestCell(best Best, col, row int32) (from [2]int32, log float64) 
 				try(2*col+c, 2*row+r, 0)
 			}
 		}
+	case blended:
+		try(col, row, kernel.Log(1-u.share))
 	}
 	return from, log
 }
@@ -261,9 +275,8 @@ func (b *Belief) End(best Best) Spot {
 }
 
 func (s *Spot) of(t *Tiles) {
-	at := t.At[s.Entry/tileCells]
-	s.col = at.Col*TileSide + int32(s.Entry%tileCells%TileSide)
-	s.row = at.Row*TileSide + int32(s.Entry%tileCells/TileSide)
+	cell := t.cellAt(s.Entry)
+	s.col, s.row = cell[0], cell[1]
 }
 
 // Trace follows the most probable path back over a tape, from a spot at its end
@@ -322,7 +335,11 @@ func (u *turn) back(best Best, spot Spot, k, dim int, angular uint) Spot {
 	case shifted:
 		return spot.at(&u.tiles)
 	default:
-		from, _ := u.bestCell(best, spot.col, spot.row)
+		from, log := u.bestCell(best, spot.col, spot.row)
+		if u.kind == blended && slices.Max(best)+u.blendedIn(spot.col, spot.row) > log {
+			i := u.jump(best, 0).Entry
+			from = u.tiles.cellAt(i)
+		}
 		spot.col, spot.row = from[0], from[1]
 		return spot.at(&u.tiles)
 	}

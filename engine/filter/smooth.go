@@ -75,6 +75,8 @@ func (u *turn) undo(h *Belief, s *smoother, ts *tileSpace) {
 		u.undoRefined(h)
 	case coarsened:
 		u.undoCoarsened(h)
+	case blended:
+		u.undoBlended(h)
 	}
 	h.Level, h.Lattice = u.level, u.lattice
 }

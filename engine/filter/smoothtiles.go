@@ -56,6 +56,26 @@ func (u *turn) undoCoarsened(h *Belief) {
 	h.Tiles = u.whole(out)
 }
 
+// undoBlended takes a lattice back over mass from elsewhere, in its own cells: what was
+// there before has of what is known later of its cell as much as it had of the cell.
+func (u *turn) undoBlended(h *Belief) {
+	out := Tiles{slices.Clone(u.tiles.At), slices.Clone(u.tiles.Mass), u.tiles.Surplus}
+	for i, at := range out.At {
+		tile := out.tile(i)
+		for x, alpha := range tile {
+			if alpha == 0 {
+				continue
+			}
+			tile[x] = 0
+			col, row := at.Col*TileSide+int32(x%TileSide), at.Row*TileSide+int32(x/TileSide)
+			if beta := u.then.cell(col, row); beta > 0 {
+				tile[x] = alpha * h.Tiles.cell(col, row) / beta
+			}
+		}
+	}
+	h.Tiles = u.whole(out)
+}
+
 // undoRefined takes a lattice back over interpolation by cubics: γ(i) = α(i) Σ_f
 // A(f, i) γ'(f)/β(f), A being the weights of interpolate, of which some are
 // negative: what would be below 0 is 0.
@@ -117,6 +137,12 @@ func (t *Tiles) cell(col, row int32) float64 {
 		return 0
 	}
 	return t.tile(i)[within(col, row)]
+}
+
+// cellAt is the column and row of the cell whose mass is at an index.
+func (t *Tiles) cellAt(i int) [2]int32 {
+	at, x := t.At[i/tileCells], i%tileCells
+	return [2]int32{at.Col*TileSide + int32(x%TileSide), at.Row*TileSide + int32(x/TileSide)}
 }
 
 // within is the index of a cell within its tile.

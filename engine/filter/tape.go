@@ -36,6 +36,7 @@ type turn struct {
 	// Of a lattice.
 	spread taps
 	then   Tiles
+	share  float64 // of what was blended in
 }
 
 type turnKind uint8
@@ -49,6 +50,7 @@ const (
 	spreadOut
 	refined
 	coarsened
+	blended // with mass from elsewhere
 )
 
 // Record has what is done to b with this workspace go to t, which it empties; nil stops it.

@@ -97,7 +97,7 @@ type Vehicle struct {
 	// unless said, once in 30 years. MovedPerS is added while it is silent or
 	// stands for more than a minute, when it may be towed or ferried: 1e-5
 	// unless said, once in 28 hours of that. Both are practice; both 0 say
-	// never. They have no meaning on a plane.
+	// never, and so does a suite for planes that says nothing.
 	LostPerS  *float64 `yaml:"lost_per_s"`
 	MovedPerS *float64 `yaml:"moved_per_s"`
 }

@@ -32,7 +32,7 @@ func (s *Session) Ahead() (*Ahead, error) {
 	c := &Session{
 		vehicle: s.vehicle, space: s.space, lines: s.lines, names: s.names, suite: s.suite, dim: s.dim,
 		cellsM: s.cellsM, maxCells: s.maxCells, maxCarried: maxCarried,
-		rates: s.rates, near: s.near, entry: s.entry, areaM2: s.areaM2,
+		rates: s.rates, nowhere: s.nowhere, near: s.near, entry: s.entry, areaM2: s.areaM2,
 		state: s.state.clone(), accepted: s.accepted, refused: s.refused,
 	}
 	c.motion.Suite = s.suite

@@ -11,10 +11,10 @@ import (
 	"leadline/engine/summary"
 )
 
-// aside is what is kept beside the belief on roads: that the vehicle is on none
-// of them, with a position of its own, and that it is lost, which says nothing of
-// where it is. The belief has what is left of 1. Nothing is kept of them on a
-// plane.
+// aside is what is kept beside the belief: on roads, that the vehicle is on none of
+// them, with a position of its own; and that it is lost, which says nothing of where it
+// is. The belief has what is left of 1. A belief on a plane goes where the motion
+// says, beyond the heights, too: being off the map is within it.
 type aside struct {
 	off   float64 // probability
 	loose filter.Loose
@@ -24,8 +24,9 @@ type aside struct {
 	roadM, quietS float64
 	alarm         bool // lost
 	// woke is when the last quiet of more than quietAfterS ended; search is on
-	// its way, nil for none, and searched when the last one came in.
-	woke, searched sensor.Time
+	// its way, nil for none, and searched when the last one came in; sure is when being
+	// lost was last as good as ruled out.
+	woke, searched, sure sensor.Time
 	tries          int // searches since the vehicle was located, or woke
 	search         *search
 	named          int // the search of a checkpoint, by its number from 1
@@ -71,10 +72,13 @@ func (a *aside) raise(p *summary.Posterior) bool {
 type rates struct{ off, in, lost, moved float64 }
 
 func (s *Session) setRates() {
+	v := &s.suite.Vehicle
 	if s.lines == nil {
+		if q := s.state.belief; len(q.Axes) == 0 { // of a grid with velocities nothing is kept
+			s.rates.lost, s.rates.moved = rateOf(v.LostPerS), rateOf(v.MovedPerS)
+		}
 		return
 	}
-	v := &s.suite.Vehicle
 	s.rates = rates{*v.OffMapPerM, *v.OnMapPerM, *v.LostPerS, *v.MovedPerS}
 	loose, ok := filter.NewLoose(s.state.belief.Quantities)
 	s.near, _ = s.lines.(filter.Nearby)
@@ -87,6 +91,31 @@ func (s *Session) setRates() {
 		s.survey()
 	}
 }
+
+// rateOf is 0 where the suite does not say.
+func rateOf(rate *float64) float64 {
+	if rate == nil {
+		return 0
+	}
+	return *rate
+}
+
+// anyPlace is the belief of a vehicle that may be anywhere on a plane, which nothing
+// moves or weighs: what it expects of a measurement is what is expected of a lost one.
+func (s *Session) anyPlace() *filter.Belief {
+	if s.nowhere == nil {
+		b, err := filter.Seed(s.space, filter.Anywhere{}, s.state.belief.Quantities, anyPlaces)
+		if err != nil {
+			panic("session: " + err.Error()) // setRates has tried it
+		}
+		s.nowhere = b
+	}
+	return s.nowhere
+}
+
+// anyPlaces is the number of cells, or Gaussians, of anyPlace: of a map of 20 km the
+// places are 300 m apart. A cell's width is in what it expects.
+const anyPlaces = 4096
 
 // survey takes the area of the map's box, m², at least that over which outlying
 // fixes are flat, and how many roads there are within.
@@ -115,7 +144,7 @@ func (s *Session) survey() {
 // moveAside moves what is beside the belief by the motion that was gathered and
 // taken by the belief.
 func (s *Session) moveAside() {
-	if s.lines == nil || s.rates == (rates{}) {
+	if s.rates == (rates{}) {
 		return
 	}
 	st, m := &s.state, &s.motion
@@ -228,11 +257,17 @@ func (s *Session) weighAside(ev sensor.Event, l any, way bool, on float64) float
 	}
 	off := math.Inf(-1)
 	var lost float64
-	if way {
+	switch {
+	case s.lines == nil:
+		var err error
+		if lost, err = filter.Try(s.anyPlace(), s.space, l, &s.desk().work); errors.Is(err, filter.ErrContradiction) {
+			lost = math.Inf(-1)
+		}
+	case way:
 		linear, _ := l.(filter.LinearLikelihood)
 		lost = sensor.WayElsewhere(linear, s.state.bend, s.motion.TravelledM())
 		off = lost
-	} else {
+	default:
 		c := s.context(ev)
 		lost = sensor.Elsewhere(ev, c, s.areaM2)
 		if a.off > 0 {

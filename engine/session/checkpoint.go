@@ -239,6 +239,7 @@ func (a *aside) code(c *exact.Coder, searches []*search) {
 	c.Bool(&a.alarm)
 	c.Value(&a.woke)
 	c.Value(&a.searched)
+	c.Value(&a.sure)
 	c.Value(&a.tries)
 	named := slices.Index(searches, a.search) + 1
 	c.Value(&named)

@@ -132,9 +132,9 @@ func TestFieldsOfCheckpoints(t *testing.T) {
 		v      any
 		fields int
 	}{
-		{Session{}, 54},
+		{Session{}, 55},
 		{state{}, 22},
-		{aside{}, 11},
+		{aside{}, 12},
 		{snapshot{}, 3},
 		{log{}, 7},
 		{source{}, 3},

@@ -58,7 +58,7 @@ func (s *Session) weigh(ev sensor.Event, l any) {
 			st.monitor.Take(key, int64(ev.Time), st.odometerM, scores[:fell.Rows], ratios)
 		}
 	}
-	if st.aside.off >= offExplains {
+	if st.aside.off+st.aside.lost >= offExplains {
 		st.monitor.Answered()
 	}
 	st.record(summary.Evidence{
@@ -73,8 +73,8 @@ func monitorKey(ev sensor.Event) monitor.Key {
 }
 
 // The monitor compares with what is expected on the map: not while the vehicle is
-// likely not there, as far as a tenth goes; and being off the map, once it is the
-// likelier, answers what has spoken against being on it.
+// likely not there, as far as a tenth goes; and being off the map or lost, once it is
+// the likelier, answers what has spoken against being there.
 const (
 	offDisturbs = 0.1
 	offExplains = 0.5
@@ -85,7 +85,7 @@ const (
 // whether the belief is worth it.
 func (s *Session) watchable(ev sensor.Event, key monitor.Key) bool {
 	st := &s.state
-	if st.belief.Cells() > s.hugeSize || st.aside.off > offDisturbs {
+	if st.belief.Cells() > s.hugeSize || st.aside.off+st.aside.lost > offDisturbs {
 		return false
 	}
 	afterS, afterM := s.independent(key)

@@ -17,7 +17,10 @@ import (
 //
 // The search is a function of the set of events. It covers searchBackS before the
 // alarm, no more than maxSearched events of them, and nothing from before the end
-// of the last long stop or silence, in which the vehicle may have been carried.
+// of the last long stop or silence, in which the vehicle may have been carried: of one
+// that goes on, the present alone. On a plane nothing from before being lost was last as
+// good as ruled out: a lattice follows everything that was possible until then, and what
+// was on its way cannot be where the vehicle has been carried to.
 // It enters enterAfterS after the alarm, by the events' time, and the session
 // waits for it then: whoever runs it meanwhile elsewhere (Config.Begin) changes
 // when the answer comes and not what it is. The next one begins searchAgainS
@@ -30,6 +33,7 @@ const (
 	searchBackS  = 300.0
 	maxSearched  = 1 << 14
 	enterAfterS  = 5.0
+	sureBelow    = 1e-6 // a thousand times what a second brings, and far below searchFrom
 	searchFrom   = 0.05 // 1 less summary's share of a mode from which on a vehicle is located
 	searchAgainS = 60.0
 	searchMostS  = 480.0 // three doublings: a search of 15 s, as in a city, is then 3 % of a core
@@ -61,6 +65,9 @@ func (s *Session) keepPast(dropped []sensor.Event) {
 func (s *Session) look() {
 	st := &s.state
 	a := &st.aside
+	if a.lost < sureBelow {
+		a.sure = st.time
+	}
 	switch {
 	case a.search != nil && st.time >= a.search.enter:
 		s.letIn(a.search)
@@ -87,6 +94,12 @@ func (a *aside) pauseS() float64 {
 func (s *Session) begins() *search {
 	st := &s.state
 	from := max(st.time-sensor.Time(searchBackS*1e9), st.aside.woke)
+	switch {
+	case st.aside.quietS > quietAfterS:
+		from = st.time - 1 // it may have been carried until now
+	case s.lines == nil:
+		from = max(from, st.aside.sure)
+	}
 	return s.search(s.events(from, st.time), st.time, st.time+sensor.Time(enterAfterS*1e9))
 }
 
@@ -124,7 +137,11 @@ func (s *Session) events(from, until sensor.Time) []sensor.Event {
 // anywhere returns a session that is to follow events from anywhere on the map,
 // for nobody to read: it makes no posteriors and keeps no snapshots.
 func (s *Session) anywhere(events []sensor.Event) *Session {
-	f, err := New(Config{Vehicle: s.vehicle, Space: s.space, Names: s.names, Suite: s.suite, MaxCells: s.maxCells, Unguarded: s.unguarded})
+	maxCells := s.maxCells
+	if s.points() {
+		maxCells /= PointsPerGaussian // which New takes times that
+	}
+	f, err := New(Config{Vehicle: s.vehicle, Space: s.space, Names: s.names, Suite: s.suite, MaxCells: maxCells, Unguarded: s.unguarded})
 	if err != nil {
 		panic("session: " + err.Error()) // it has been made before
 	}
@@ -184,7 +201,7 @@ func (s *Session) letIn(x *search) {
 		f.log.insert(len(f.log.events), ev, f.suite)
 	}
 	f.runUntil(st.time)
-	if b := f.state.belief; b.Level != st.belief.Level {
+	if b := f.state.belief; s.lines != nil && b.Level != st.belief.Level {
 		level := max(b.Level, st.belief.Level)
 		filter.Relevel(b, s.lines, level, &s.desk().work)
 		filter.Relevel(st.belief, s.lines, level, &s.desk().work)
@@ -196,7 +213,11 @@ func (s *Session) letIn(x *search) {
 		a.off += gain
 	}
 	gain := lost * found.on()
-	filter.Blend(st.belief, f.state.belief, gain/(on+gain), s.lines, &s.desk().work)
+	if share := gain / (on + gain); s.lines != nil {
+		filter.Blend(st.belief, f.state.belief, share, s.lines, &s.desk().work)
+	} else {
+		filter.BlendPlane(st.belief, f.state.belief, share, s.maxCells, &s.desk().work)
+	}
 	a.lost = lost * found.lost
 	st.pace.stretches = st.pace.stretches[:0] // the scale is another one, perhaps
 }

@@ -150,11 +150,12 @@ type Session struct {
 	maxCarried, strideM            float64
 	followed                       float64 // work of the present move
 	followLimit                    float64 // in tests, see maxFollowed
-	// What is kept beside a belief on roads, see aside.
-	rates  rates
-	near   filter.Nearby // nil: nothing comes back onto the roads
-	entry  filter.Entry  // onto the roads, but for its hazard
-	areaM2 float64       // of the map's box
+	// What is kept beside the belief, see aside.
+	rates   rates
+	nowhere *filter.Belief // see anyPlace; never changed once it is made
+	near    filter.Nearby  // nil: nothing comes back onto the roads
+	entry   filter.Entry   // onto the roads, but for its hazard
+	areaM2  float64        // of the map's box
 	// For searches: events that the log has dropped, who runs them; and in one's
 	// own session that nobody reads it, and until when it goes.
 	past      past
@@ -269,10 +270,16 @@ func prepare(c Config) (*Session, error) {
 	if err := s.shown().Validate(); err != nil {
 		return nil, err
 	}
-	if qs := s.suite.Quantities(s.dim); s.dim == 2 && (len(qs) == 0 || gridded(qs)) {
+	if s.points() {
 		s.maxCells = PointsPerGaussian * min(s.maxCells, math.MaxInt/PointsPerGaussian)
 	}
 	return s, nil
+}
+
+// points says that the belief is masses on points, and not Gaussians.
+func (s *Session) points() bool {
+	qs := s.suite.Quantities(s.dim)
+	return s.dim == 2 && (len(qs) == 0 || gridded(qs))
 }
 
 // gridded says that velocities are axes of the grid.
