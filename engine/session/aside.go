@@ -27,9 +27,9 @@ type aside struct {
 	// its way, nil for none, and searched when the last one came in; sure is when being
 	// lost was last as good as ruled out.
 	woke, searched, sure sensor.Time
-	tries          int // searches since the vehicle was located, or woke
-	search         *search
-	named          int // the search of a checkpoint, by its number from 1
+	tries                int // searches since the vehicle was located, or woke
+	search               *search
+	named                int // the search of a checkpoint, by its number from 1
 }
 
 func (a *aside) on() float64 { return 1 - a.off - a.lost }
