@@ -9,6 +9,7 @@ import (
 
 	"google.golang.org/protobuf/types/known/timestamppb"
 
+	"leadline/engine/study/tune"
 	leadlinev1 "leadline/proto/leadline/v1"
 )
 
@@ -108,6 +109,30 @@ func TestFollowNobody(t *testing.T) {
 	for begun := time.Now(); !strings.Contains(errs.String(), `no vehicle "nobody" is known at `+srv.address+" yet: waiting"); time.Sleep(10 * time.Millisecond) {
 		if time.Since(begun) > 20*time.Second {
 			t.Fatalf("it does not say that it waits: %q", errs)
+		}
+	}
+}
+
+// TestTunedWords: what a search that was cut short found is said to be not firm, of
+// each figure; what ended by itself is not, and has its range.
+func TestTunedWords(t *testing.T) {
+	value, from, to, sigma := 0.2, 0.15, 0.25, 0.13
+	r := &tune.Result{Drives: 2, Before: -20, After: -10, Figures: []tune.Tuned{
+		{Key: "sensors.odo.noise.sigma_m", Known: tune.Estimated, Value: &value, LogSigma: &sigma, From: &from, To: &to, Given: true, Before: 0.1},
+		{Key: "vehicle.corner_sigma_m", Known: tune.BestSoFar, Value: &value, Before: 2},
+	}}
+	for _, converged := range []bool{true, false} {
+		r.Converged = converged
+		var b strings.Builder
+		if err := printTuned(&b, r); err != nil {
+			t.Fatal(err)
+		}
+		want := 2
+		if converged {
+			want = 0
+		}
+		if n := strings.Count(b.String(), "(not firm: the search was cut short)"); n != want || !strings.Contains(b.String(), "sensors.odo.noise.sigma_m: 0.2, 95 % from 0.15 to 0.25") {
+			t.Errorf("converged %v: not firm %d times, want %d:\n%s", converged, n, want, b.String())
 		}
 	}
 }
