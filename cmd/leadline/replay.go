@@ -102,9 +102,13 @@ func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
 	job.Meter = meter
 	ctx, stop := untilSignal()
 	defer stop()
+	all := max(1, len(job.Settings)) * len(paths)
 	if o.over.broker.URL != "" {
 		queue, err := o.handOver(ctx, job, meter)
 		if err != nil {
+			if ctx.Err() != nil {
+				return o.interrupted(0, all)
+			}
 			return err
 		}
 		defer queue.Close()
@@ -139,15 +143,7 @@ func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
 		err = printSweep(c.OutOrStdout(), sum)
 	}
 	if ctx.Err() != nil {
-		whole, all := sum.Runs-sum.CutShort, max(1, len(job.Settings))*len(paths)
-		kept := "nothing was kept: give --out"
-		if o.dir != "" {
-			kept = fmt.Sprintf("what is done is in %s, and the same command goes on from there", o.dir)
-		}
-		if whole == all {
-			kept = "all scores are above; what was to be tried or explained after them is not"
-		}
-		failed = append(failed, failure{fmt.Errorf("interrupted after %d of %d runs: %s", whole, all, kept)})
+		failed = append(failed, o.interrupted(sum.Runs-sum.CutShort, all))
 	}
 	if err == nil && len(failed) > 0 {
 		if err = failed[0]; len(failed) > 1 {
@@ -155,6 +151,19 @@ func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
 		}
 	}
 	return err
+}
+
+// interrupted says what is left of a replay that a signal ended after so many whole runs
+// of all.
+func (o *replayOptions) interrupted(whole, all int) error {
+	kept := "nothing was kept: give --out"
+	if o.dir != "" {
+		kept = fmt.Sprintf("what is done is in %s, and the same command goes on from there", o.dir)
+	}
+	if whole == all {
+		kept = "all scores are above; what was to be tried or explained after them is not"
+	}
+	return failure{fmt.Errorf("interrupted after %d of %d runs: %s", whole, all, kept)}
 }
 
 // job is what is to be run; the maps that it opens go into maps.

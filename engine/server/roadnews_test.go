@@ -69,9 +69,20 @@ func TestFollowRoads(t *testing.T) {
 	is(early, "r 1 true false")
 	late := follow(true)
 	is(late, "q 1 false false", "r 1 true false")
+	// Whoever looks between the old drive and the new one is told that the road is gone.
+	again := func(st followStream) {
+		t.Helper()
+		got := nextRoads(t, st, 1)
+		if got[0] == "r 1 true true" {
+			got = nextRoads(t, st, 1)
+		}
+		if got[0] != "r 2 false false" {
+			t.Errorf("told %q of a road that comes again", got)
+		}
+	}
 	defer open("r", "2").Abort()
-	is(early, "r 2 false false")
-	is(late, "r 2 false false")
+	again(early)
+	again(late)
 	if _, err := c.EraseVehicle(ctx, &leadlinev1.EraseVehicleRequest{Vehicle: "q"}); err != nil {
 		t.Fatal(err)
 	}

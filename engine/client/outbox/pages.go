@@ -56,13 +56,14 @@ func checkPages(r io.ReaderAt, size int64, pageSize int) error {
 		}
 		sum := fnv.New64a()
 		_, _ = sum.Write(m[:metaBytes-8])
-		if order.Uint32(m) == boltMagic && order.Uint64(m[metaBytes-8:]) == sum.Sum64() &&
-			(meta == nil || order.Uint64(m[48:]) > order.Uint64(meta[48:])) {
+		// One that is damaged would have the other one's state taken, which is one change
+		// older. It fits into a sector, which is written whole, so it is no power failure's.
+		if order.Uint32(m) != boltMagic || order.Uint64(m[metaBytes-8:]) != sum.Sum64() {
+			return fmt.Errorf("page %d is damaged", i)
+		}
+		if meta == nil || order.Uint64(m[48:]) > order.Uint64(meta[48:]) {
 			meta = m
 		}
-	}
-	if meta == nil {
-		return errors.New("pages 0 and 1 are both damaged")
 	}
 	root, free := order.Uint64(meta[16:]), order.Uint64(meta[32:])
 	p.count = order.Uint64(meta[40:])
