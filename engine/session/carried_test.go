@@ -31,16 +31,7 @@ func (f folds) height(p geo.Point) (z, gE, gN float64) {
 }
 
 func (f folds) Sample(dst geo.Heights, eastM, northM []float64) {
-	for i := range eastM {
-		z, gE, gN := f.height(geo.Point{E: eastM[i], N: northM[i]})
-		dst.HeightM[i] = z
-		if dst.SlopeE != nil {
-			dst.SlopeE[i], dst.SlopeN[i] = gE, gN
-		}
-		if dst.VarianceM2 != nil {
-			dst.VarianceM2[i] = 0
-		}
-	}
+	sampled(dst, eastM, northM, f.height)
 }
 
 // carried is a flight over folds: a minute and a half on its way, then, if it stands, four

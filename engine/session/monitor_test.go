@@ -31,8 +31,13 @@ func (h hills) height(p geo.Point) (z, gE, gN float64) {
 }
 
 func (h hills) Sample(dst geo.Heights, eastM, northM []float64) {
+	sampled(dst, eastM, northM, h.height)
+}
+
+// sampled writes the heights of a formula, which have no error.
+func sampled(dst geo.Heights, eastM, northM []float64, height func(geo.Point) (z, gE, gN float64)) {
 	for i := range eastM {
-		z, gE, gN := h.height(geo.Point{E: eastM[i], N: northM[i]})
+		z, gE, gN := height(geo.Point{E: eastM[i], N: northM[i]})
 		dst.HeightM[i] = z
 		if dst.SlopeE != nil {
 			dst.SlopeE[i], dst.SlopeN[i] = gE, gN
