@@ -16,7 +16,7 @@ FUZZ_PART ?= 0/1
 # the code. A tree may be named before it exists.
 RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/livelog/... ./engine/study/sweep ./engine/study/afar ./engine/study/forecast ./engine/study/tune ./engine/journal/... ./cmd/...
 
-.PHONY: build test race fuzz credibility study local credibility-reach survive bench bench-short benchmarks fetch fetch-arrow fetch-clients fetch-page page page-check generate generate-check vectors \
+.PHONY: evidence build test race fuzz credibility study local credibility-reach survive bench bench-short benchmarks fetch fetch-arrow fetch-clients fetch-page page page-check generate generate-check vectors \
 	generate-clients generate-clients-check format format-check vet vet-arm64 lint lint-only vuln licences licences-check clean
 
 # build makes one static binary.
@@ -54,6 +54,12 @@ credibility-reach:
 # command, such as -rows or -share.
 study:
 	$(GO) run ./fixtures/credibility/run -table study $(STUDY)
+
+# evidence makes docs/evidence.md of the tables in docs/evidence. A table that was drawn
+# is kept by go run ./tools/evidence -add build/study.json -table study -code COMMIT
+# -on "two cores, idle" -as study.
+evidence:
+	$(GO) run ./tools/evidence
 
 # local puts a log of your own, of NMEA 0183 sentences with satellite fixes, speeds,
 # headings and depths, through the case of depths: make local LOG=survey.nmea
