@@ -91,6 +91,16 @@ func headingDefault(dim int) Nuisance {
 // scaleDefault is the odometer scale's.
 var scaleDefault = Nuisance{Sigma: 0.02, DriftPerSqrtS: 1e-5}
 
+// Estimates returns the sensor that the suite has a nuisance of.
+func (s *Suite) Estimates(nuisance string) (name string, ok bool) {
+	for _, d := range s.Sensors {
+		if d.has(nuisance) {
+			return d.Name, true
+		}
+	}
+	return "", false
+}
+
 func (d Sensor) has(nuisance string) bool {
 	for _, n := range d.Nuisances {
 		if n.Name == nuisance {
@@ -101,12 +111,8 @@ func (d Sensor) has(nuisance string) bool {
 }
 
 func (s *Suite) declares(nuisance string) bool {
-	for _, d := range s.Sensors {
-		if d.has(nuisance) {
-			return true
-		}
-	}
-	return false
+	_, ok := s.Estimates(nuisance)
+	return ok
 }
 
 // nuisance returns the first sensor's nuisance of a name, or the default.

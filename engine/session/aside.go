@@ -252,8 +252,8 @@ func (s *Session) leave(part *filter.Loose, share float64) {
 // impossible for all of it.
 func (s *Session) weighAside(ev sensor.Event, l any, way bool, on float64) float64 {
 	a := &s.state.aside
-	if a.off == 0 && a.lost == 0 {
-		return on
+	if a.off == 0 && a.lost == 0 || ev.Measurement.Kind() == sensor.KindStandstill {
+		return on // the latter says nothing of a place
 	}
 	off := math.Inf(-1)
 	var lost float64

@@ -226,6 +226,7 @@ func (st *state) code(c *exact.Coder, searches []*search) {
 		c.Float(&l.odometerM)
 	})
 	c.Uint(&st.processed)
+	c.Value(&st.stood)
 	c.Value(&st.monitor)
 	st.aside.code(c, searches)
 }

@@ -132,8 +132,8 @@ func TestFieldsOfCheckpoints(t *testing.T) {
 		v      any
 		fields int
 	}{
-		{Session{}, 55},
-		{state{}, 22},
+		{Session{}, 56},
+		{state{}, 23},
 		{aside{}, 12},
 		{snapshot{}, 3},
 		{log{}, 7},

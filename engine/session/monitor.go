@@ -120,7 +120,7 @@ func (s *Session) independent(key monitor.Key) (afterS, afterM float64) {
 	}
 	afterS = math.Max(independentS, s.suite.CorrelationS(key.Sensor, key.Kind))
 	switch key.Kind {
-	case sensor.KindHeading:
+	case sensor.KindHeading, sensor.KindStandstill:
 		return afterS, 0
 	case sensor.KindClearance, sensor.KindSounding:
 		if p, ok := s.space.(filter.PlaneSpace); ok {

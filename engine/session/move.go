@@ -178,6 +178,7 @@ func (s *Session) predictBy(step filter.Step) {
 	}
 	st.speed = st.pace.speed(st.belief, s.suite.Vehicle.MaxAccelMPS2)
 	s.learnVelocity()
+	s.standStill()
 	if l := s.followsRoad(travelledM); l != nil {
 		s.weigh(sensor.Event{Time: m.To, Sensor: roadSensor, Measurement: sensor.Turn{}}, l)
 	}

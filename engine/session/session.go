@@ -145,6 +145,7 @@ type Session struct {
 	maxCells int
 	// hold is the suite's hold_s, still for how long a standstill speaks.
 	hold, still                    sensor.Time
+	gyro                           string // whose bias is estimated
 	posteriorS                     float64
 	wideSize, hugeSize, maxWaiting int // the constants, less in tests
 	maxCarried, strideM            float64
@@ -265,6 +266,7 @@ func prepare(c Config) (*Session, error) {
 	}
 	s.motion.Suite = s.suite
 	v := s.suite.Vehicle
+	s.gyro, _ = s.suite.Estimates(sensor.NuisanceGyroBias)
 	s.hold = sensor.Time(v.HoldS * 1e9)
 	s.still = sensor.Time(min(standstillS, v.LateWindowS/2) * 1e9)
 	if err := s.shown().Validate(); err != nil {

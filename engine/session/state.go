@@ -40,8 +40,10 @@ type state struct {
 	// previous holds the last processed event of each voice, in order.
 	previous  []lastEvent
 	processed uint64 // events
-	monitor   *monitor.Monitor
-	aside     aside
+	// stood is what the gyro has said since the vehicle stands and has not been weighed.
+	stood   sensor.Stood
+	monitor *monitor.Monitor
+	aside   aside
 }
 
 type lastEvent struct {

@@ -12,9 +12,10 @@ type Change struct {
 	// From and Time are the stretch of time of a move; a weighing has its Time
 	// alone.
 	From, Time sensor.Time
-	// Event is what weighed the belief and Likelihood what it said, one of
-	// sensor.Likelihoods or, for the sensor "road", the comparison with the
-	// road. A move has neither.
+	// Event is what weighed the belief and Likelihood what it said: one of
+	// sensor.Likelihoods or, of the sensor "road", the comparison with the road, of
+	// the kind standstill what a gyro said of its bias while the vehicle stood. A move
+	// has neither.
 	Event      sensor.Event
 	Likelihood any
 	// LogEvidence is -Inf where the event is impossible everywhere in the
