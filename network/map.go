@@ -25,9 +25,14 @@ type Map struct {
 
 	index func() *index // built when first asked for
 	parts func() *components
+	// survey is taken once: each session of the map asks for it.
+	survey func() filter.Survey
 }
 
-var _ filter.LineSpace = (*Map)(nil)
+var _ filter.Surveyed = (*Map)(nil)
+
+// Survey implements filter.Surveyed.
+func (m *Map) Survey() filter.Survey { return m.survey() }
 
 // FromData makes a map of columns, which it keeps. The fingerprint is computed
 // if it is empty; a caller that knows it, from a file whose columns it has
@@ -45,6 +50,7 @@ func FromData(d *Data, fingerprint string) (*Map, error) {
 	m.cutCells()
 	m.index = sync.OnceValue(m.buildIndex)
 	m.parts = sync.OnceValue(m.findComponents)
+	m.survey = sync.OnceValue(func() filter.Survey { return filter.SurveyOf(m) })
 	return m, nil
 }
 

@@ -4,6 +4,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
 
 	"leadline/engine/geo"
 )
@@ -152,7 +153,7 @@ func reached(s LineSpace, prior Prior) []int32 {
 	var at Columns
 	var chart []int32
 	var along []float64
-	for c := range int32(len(lines.LengthM)) {
+	for _, c := range candidates(s, lines, box) {
 		if math.IsInf(box.Max.E, 1) {
 			charts = append(charts, c)
 			continue
@@ -170,6 +171,34 @@ func reached(s LineSpace, prior Prior) []int32 {
 				break
 			}
 		}
+	}
+	return charts
+}
+
+// nearbyM is how wide a start may be whose charts are looked up, and not tried one
+// after the other.
+const nearbyM = 5e3
+
+// candidates are the charts that may come near a box, ascending: all, unless it is
+// small and the space finds what is near.
+func candidates(s LineSpace, lines *Lines, box geo.Box) []int32 {
+	n := len(lines.LengthM)
+	d := box.Max.Sub(box.Min)
+	if near, ok := s.(Nearby); ok && d.E < nearbyM && d.N < nearbyM {
+		widest := slices.Max(lines.WidthM)
+		middle := geo.Point{E: box.Min.E + d.E/2, N: box.Min.N + d.N/2}
+		// A frame's metre may be shorter than a true one, by less than a tenth.
+		found := near.NearLines(nil, middle, 1.1*(d.Norm()/2+2*widest))
+		charts := make([]int32, len(found))
+		for i, at := range found {
+			charts[i] = at.Chart
+		}
+		slices.Sort(charts)
+		return charts
+	}
+	charts := make([]int32, n)
+	for c := range charts {
+		charts[c] = int32(c)
 	}
 	return charts
 }

@@ -28,6 +28,37 @@ type LineSpace interface {
 	Sample(dst *Columns, chart []int32, alongM []float64, widthM float64)
 }
 
+// Survey is what all lines of a space come to.
+type Survey struct {
+	LengthM float64 // of every chart, each direction its own
+	Box     geo.Box // of their starts
+}
+
+// Surveyed is a LineSpace that keeps its survey, which takes a while.
+type Surveyed interface {
+	LineSpace
+	Survey() Survey
+}
+
+// SurveyOf surveys a space.
+func SurveyOf(s LineSpace) Survey {
+	lines := s.Lines(s.Levels() - 1)
+	n := len(lines.LengthM)
+	sv := Survey{Box: geo.EmptyBox()}
+	chart, along := make([]int32, n), make([]float64, n)
+	for i := range chart {
+		chart[i] = int32(i)
+		sv.LengthM += lines.LengthM[i]
+	}
+	var at Columns
+	at.Resize(WantPosition, 1, n)
+	s.Sample(&at, chart, along, lines.WidthM[0])
+	for i := range at.East {
+		sv.Box = sv.Box.Extend(geo.Point{E: at.East[i], N: at.North[i]})
+	}
+	return sv
+}
+
 // PlaneSpace is a plane, with a height under it or without.
 type PlaneSpace interface {
 	Space

@@ -5,7 +5,6 @@ import (
 	"math"
 
 	"leadline/engine/filter"
-	"leadline/engine/geo"
 	"leadline/engine/kernel"
 	"leadline/engine/sensor"
 	"leadline/engine/summary"
@@ -120,25 +119,15 @@ const anyPlaces = 4096
 // survey takes the area of the map's box, m², at least that over which outlying
 // fixes are flat, and how many roads there are within.
 func (s *Session) survey() {
-	level := s.lines.Levels() - 1
-	lines := s.lines.Lines(level)
-	var at filter.Columns
-	n := len(lines.LengthM)
-	chart, along := make([]int32, n), make([]float64, n)
-	lengthM := 0.0
-	for i := range chart {
-		chart[i] = int32(i)
-		lengthM += lines.LengthM[i]
+	var all filter.Survey
+	if known, ok := s.lines.(filter.Surveyed); ok {
+		all = known.Survey()
+	} else {
+		all = filter.SurveyOf(s.lines)
 	}
-	at.Resize(filter.WantPosition, 1, n)
-	s.lines.Sample(&at, chart, along, lines.WidthM[0])
-	box := geo.EmptyBox()
-	for i := range at.East {
-		box = box.Extend(geo.Point{E: at.East[i], N: at.North[i]})
-	}
-	d := box.Max.Sub(box.Min)
+	d := all.Box.Max.Sub(all.Box.Min)
 	s.areaM2 = math.Max(d.E*d.N, 1e8)
-	s.entry.Among = s.entry.AmongLines(lengthM, (d.E+2*besideM)*(d.N+2*besideM))
+	s.entry.Among = s.entry.AmongLines(all.LengthM, (d.E+2*besideM)*(d.N+2*besideM))
 }
 
 // moveAside moves what is beside the belief by the motion that was gathered and
