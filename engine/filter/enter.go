@@ -69,10 +69,9 @@ const (
 func (l *Loose) Enter(b *Belief, space Nearby, e Entry, on, off float64, w *Workspace) (onAfter, offAfter, astray float64) {
 	k := len(l.Quantities)
 	heading := Index(l.Quantities, Heading)
-	var places []Nearest
-	var fresh Gaussians // keys are indices of places
-	var at Nearest
-	var where []Nearest
+	fresh, places, where := &w.loose.fresh, w.loose.places, w.loose.where[:0]
+	fresh.reset()
+	defer func() { w.loose.places, w.loose.where = places, where }()
 	var moved float64
 	for i := range l.Mass {
 		var g gaussian
@@ -107,11 +106,10 @@ func (l *Loose) Enter(b *Belief, space Nearby, e Entry, on, off float64, w *Work
 			if off*g.mass*weight*e.Hazard < leastEntry {
 				continue
 			}
-			at = places[j]
 			piece.mass = weight
 			sum += weight
 			fresh.push(uint64(len(where)), k-1, &piece)
-			where = append(where, at)
+			where = append(where, places[j])
 		}
 		if sum == 0 {
 			continue
@@ -129,9 +127,9 @@ func (l *Loose) Enter(b *Belief, space Nearby, e Entry, on, off float64, w *Work
 	left := math.Max(1-moved-astray, 0) // by rounding
 	onAfter, offAfter, astray = on+off*moved, off*left, off*astray
 	if moved > 0 {
-		b.inject(space, &fresh, where, on/onAfter, off/onAfter, w)
+		b.inject(space, fresh, where, on/onAfter, off/onAfter, w)
 	}
-	l.Reduce(len(l.Mass))
+	l.reduce(len(l.Mass), w)
 	return onAfter, offAfter, astray
 }
 

@@ -44,6 +44,7 @@ func TestEnterAstray(t *testing.T) {
 		if err != nil {
 			t.Fatal(err)
 		}
+		var w filter.Workspace
 		l, ok := filter.NewLoose(b.Quantities)
 		if !ok {
 			t.Fatal("no heading")
@@ -54,10 +55,9 @@ func TestEnterAstray(t *testing.T) {
 		one.Mean = []float64{at.E, at.N, 0}
 		v := c.sigmaM * c.sigmaM
 		one.Cov = []float64{v, 0, v, 0, 0, 0.01}
-		l.Mix(&one, 1, 1)
+		l.Mix(&one, 1, 1, &w)
 		e := filter.Entry{Hazard: 0.25, LateralVar: 25, HeadingVar: 0.07, Among: 0.02}
 		const on, off = 0.3, 0.6
-		var w filter.Workspace
 		onAfter, offAfter, astray := l.Enter(b, street, e, on, off, &w)
 		if math.Abs(onAfter+offAfter+astray-(on+off)) > 1e-12 {
 			t.Errorf("sigma %v m: on %v, off %v, astray %v", c.sigmaM, onAfter, offAfter, astray)

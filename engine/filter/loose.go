@@ -138,7 +138,7 @@ func (l *Loose) Update(plane PlaneSpace, likelihood any, w *Workspace) (logEvide
 
 // Mix adds another mixture over the same quantities, which is to be a share of
 // the whole, and merges what is more than most Gaussians.
-func (l *Loose) Mix(other *Loose, share float64, most int) {
+func (l *Loose) Mix(other *Loose, share float64, most int, w *Workspace) {
 	for i := range l.Mass {
 		l.Mass[i] *= 1 - share
 	}
@@ -151,7 +151,7 @@ func (l *Loose) Mix(other *Loose, share float64, most int) {
 	}
 	l.Mean = append(l.Mean, other.Mean...)
 	l.Cov = append(l.Cov, other.Cov...)
-	l.Reduce(most)
+	l.reduce(most, w)
 }
 
 // nearSquare is the squared distance, in their common spread, below which two
@@ -159,7 +159,7 @@ func (l *Loose) Mix(other *Loose, share float64, most int) {
 // raises the variance by an eighth.
 const nearSquare = 0.5
 
-// Reduce merges Gaussians by moments: those that are as good as one, and then
+// reduce merges Gaussians by moments: those that are as good as one, and then
 // the pair whose merging moves least until there are most at most. What moves is
 //
 //	m₁m₂/(m₁+m₂)·(Δᵀ(P₁+P₂)⁻¹Δ + Δψ²/(v₁+v₂+0.01)),
@@ -167,11 +167,12 @@ const nearSquare = 0.5
 // Δ between the places, ψ the headings: Ward's criterion in units of their
 // spread. Mass, mean and covariance of the whole are kept; what is lost is what
 // the mixture is beyond them.
-func (l *Loose) Reduce(most int) {
+func (l *Loose) reduce(most int, w *Workspace) {
 	k := len(l.Quantities)
 	heading := Index(l.Quantities, Heading)
 	angular := angularMask(l.Quantities)
-	gs := make([]gaussian, len(l.Mass))
+	w.loose.gaussians = resize(w.loose.gaussians, len(l.Mass))
+	gs := w.loose.gaussians
 	for i := range gs {
 		l.load(&gs[i], i, k)
 	}

@@ -14,8 +14,8 @@ import (
 // Masses are the belief's.
 func (b *Belief) Loosen(dst *Loose, space LineSpace, lateralM2 float64, most int, w *Workspace) {
 	w.locate(b, space, WantPosition)
-	dst.gather(&b.Gaussians, &w.at, lateralM2)
-	dst.Reduce(most)
+	dst.gather(&b.Gaussians, &w.at, lateralM2, w)
+	dst.reduce(most, w)
 }
 
 // looseM is the side of the squares in which Gaussians are merged first: a
@@ -28,25 +28,38 @@ const (
 	mostSquares = 16
 )
 
+// looseWork is memory for what follows no lines.
+type looseWork struct {
+	squares   []inSquare
+	gaussians []gaussian
+	// What comes onto lines: its keys are indices of where.
+	fresh  Gaussians
+	places []Nearest
+	where  []Nearest
+}
+
+// inSquare is the Gaussian i, and the square and sector in which it is.
+type inSquare struct {
+	e, n, h int32
+	i       int
+}
+
 // gather adds Gaussians over line quantities at the places of the columns, whose
 // position means are in the columns.
-func (l *Loose) gather(from *Gaussians, at *Columns, lateralM2 float64) {
+func (l *Loose) gather(from *Gaussians, at *Columns, lateralM2 float64, w *Workspace) {
 	k := len(l.Quantities)
 	heading := Index(l.Quantities, Heading)
-	type entry struct {
-		e, n, h int32
-		i       int
-	}
-	entries := make([]entry, len(from.Mass))
+	w.loose.squares = resize(w.loose.squares, len(from.Mass))
+	entries := w.loose.squares
 	for side := looseM; ; side *= 2 {
 		for i := range entries {
 			h := 0.0
 			if side < wideSquareM { // 45° sectors, well above what tells two roads of one way apart
 				h = math.Floor(geo.WrapPi(from.Mean[i*(k-1)+heading-1]) / (math.Pi / 4))
 			}
-			entries[i] = entry{int32(math.Floor(at.East[i] / side)), int32(math.Floor(at.North[i] / side)), int32(h), i}
+			entries[i] = inSquare{int32(math.Floor(at.East[i] / side)), int32(math.Floor(at.North[i] / side)), int32(h), i}
 		}
-		slices.SortFunc(entries, func(a, b entry) int { // sums run in this order
+		slices.SortFunc(entries, func(a, b inSquare) int { // sums run in this order
 			return cmp.Or(cmp.Compare(a.e, b.e), cmp.Compare(a.n, b.n), cmp.Compare(a.h, b.h), cmp.Compare(a.i, b.i))
 		})
 		squares := 0
@@ -126,8 +139,8 @@ func (b *Belief) Departed(dst *Loose, space LineSpace, lateralM2 float64, most i
 		w.at.North[i] += float64(beyond * w.at.TangentN[i])
 		left += m
 	}
-	dst.gather(&w.departed, &w.at, lateralM2)
-	dst.Reduce(most)
+	dst.gather(&w.departed, &w.at, lateralM2, w)
+	dst.reduce(most, w)
 	stay := 0.0
 	for _, m := range b.Mass {
 		stay += m

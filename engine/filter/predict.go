@@ -34,6 +34,7 @@ type Workspace struct {
 	cellLogs      []float64
 	residual      []float64 // and what densities works with
 	variance      []float64
+	loose         looseWork
 	tiles         tileSpace
 	slices        sliceSpace
 

@@ -127,34 +127,38 @@ type Columns struct {
 	// its gradient in the frame (on lines: the grade times the tangent); the
 	// variance of the map's own error, m².
 	Height, SlopeE, SlopeN, HeightVar []float64
+
+	kept [11][]float64 // the memory of all, in this order
 }
 
-// Resize makes the wanted columns n long, keeping what memory there is.
+// Resize makes the wanted columns n long and the others nil, keeping all memory: what is
+// wanted changes from call to call.
 func (c *Columns) Resize(wants Wants, dim, n int) {
 	c.Wants, c.Dim = wants, dim
-	size := func(want bool, s *[]float64) {
-		switch {
-		case !want:
-			*s = nil
-		case cap(*s) >= n:
-			*s = (*s)[:n]
-		default:
-			*s = make([]float64, n)
+	heading, height := wants&WantHeading != 0 && dim == 1, wants&WantHeight != 0
+	for i, column := range [...]struct {
+		wanted bool
+		s      *[]float64
+	}{
+		{true, &c.East},
+		{true, &c.North},
+		{dim == 1, &c.TangentE},
+		{dim == 1, &c.TangentN},
+		{heading, &c.Heading},
+		{heading, &c.Curvature},
+		{heading, &c.HeadingVar},
+		{height, &c.Height},
+		{height, &c.SlopeE},
+		{height, &c.SlopeN},
+		{height, &c.HeightVar},
+	} {
+		if !column.wanted {
+			*column.s = nil
+			continue
 		}
+		c.kept[i] = resize(c.kept[i], n)
+		*column.s = c.kept[i]
 	}
-	size(true, &c.East)
-	size(true, &c.North)
-	size(dim == 1, &c.TangentE)
-	size(dim == 1, &c.TangentN)
-	h := wants&WantHeading != 0 && dim == 1
-	size(h, &c.Heading)
-	size(h, &c.Curvature)
-	size(h, &c.HeadingVar)
-	h = wants&WantHeight != 0
-	size(h, &c.Height)
-	size(h, &c.SlopeE)
-	size(h, &c.SlopeN)
-	size(h, &c.HeightVar)
 }
 
 // Len returns the number of positions.

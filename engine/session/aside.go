@@ -232,7 +232,7 @@ func (s *Session) leave(part *filter.Loose, share float64) {
 	if a.off+gain >= smallShare {
 		most = mostLoose
 	}
-	a.loose.Mix(part, gain/(a.off+gain), most)
+	a.loose.Mix(part, gain/(a.off+gain), most, &s.desk().work)
 	a.off += gain
 }
 

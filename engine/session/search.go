@@ -209,7 +209,7 @@ func (s *Session) letIn(x *search) {
 	on, lost := a.on(), a.lost
 	found := &f.state.aside
 	if gain := lost * found.off; gain > 0 && found.loose.Len() > 0 {
-		a.loose.Mix(&found.loose, gain/(a.off+gain), mostLoose)
+		a.loose.Mix(&found.loose, gain/(a.off+gain), mostLoose, &s.desk().work)
 		a.off += gain
 	}
 	gain := lost * found.on()

@@ -13,8 +13,12 @@ import (
 func columns(c *filter.Columns) (names []string, values [][]float64) {
 	v := reflect.ValueOf(*c)
 	for i := range v.NumField() {
+		field := v.Type().Field(i)
+		if !field.IsExported() {
+			continue
+		}
 		if s, ok := v.Field(i).Interface().([]float64); ok {
-			names, values = append(names, v.Type().Field(i).Name), append(values, s)
+			names, values = append(names, field.Name), append(values, s)
 		}
 	}
 	return names, values
