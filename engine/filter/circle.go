@@ -85,9 +85,3 @@ func normalTails(z float64) tails {
 	}
 	return tails{1 - tail, tail}
 }
-
-// uniformTails of a place in a distribution over ±½.
-func uniformTails(x float64) tails {
-	x = max(-0.5, min(0.5, x))
-	return tails{0.5 + x, 0.5 - x}
-}

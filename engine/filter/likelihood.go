@@ -63,6 +63,11 @@ type Noise struct {
 	// FlatWeight is the probability of an outlier, whose density is
 	// FlatDensity wherever it falls (per unit of the residual). Both may be 0.
 	FlatWeight, FlatDensity float64
+	// FlatRank is the probability that an outlier is less than this measurement
+	// (function FlatRank), of one component, where outliers have a span of their own
+	// whatever was predicted: plausible heights, say. 0 where they are flat about the
+	// prediction. It weighs nothing: the monitor asks for it (Predictive).
+	FlatRank float64
 	// Power is in (0, 1]; 0 means 1.
 	Power float64
 }
@@ -79,4 +84,23 @@ type NoisePart struct {
 // Gaussian is the noise of a plain measurement with standard deviation sigma.
 func Gaussian(sigma float64) Noise {
 	return Noise{Parts: []NoisePart{{Weight: 1, Cov: [3]float64{sigma * sigma, 0, sigma * sigma}}}}
+}
+
+// beyondSpan is the part of outliers that lies beyond the span in which they are flat:
+// so much of what is called impossible happens after all (practice).
+const beyondSpan = 0.1
+
+// FlatRank is the probability that an outlier is less than x, where outliers are flat
+// from low to high, but for a tenth of them, a half of which lies on either side: of
+// where beyond the span nothing is known, so that there it is the middle of what that
+// half holds. It is never 0 or 1: of a score (Predictive.Score), x being an outlier of
+// probability w, as much as w/40 remains on the side that it is on.
+func FlatRank(x, low, high float64) float64 {
+	switch {
+	case x < low:
+		return beyondSpan / 4
+	case x > high:
+		return 1 - beyondSpan/4
+	}
+	return beyondSpan/2 + float64((1-beyondSpan)*(x-low)/(high-low))
 }

@@ -18,8 +18,8 @@ import (
 //
 //	Below = Σ m_i (Σ_c w_c Φ(r_i/√S_ic) + w_flat U(r_i)),
 //
-// over the parts c of the noise; U is the uniform distribution of density
-// FlatDensity about the prediction. Of two components the second is taken given
+// over the parts c of the noise; U is the distribution of outliers,
+// Noise.FlatRank or, where that is 0, FlatRank about the prediction. Of two components the second is taken given
 // the first (Rosenblatt, Ann. Math. Stat. 23, 1952). On a circle the
 // distributions begin opposite to the prediction of the heaviest Gaussian.
 type Predictive struct {
@@ -190,27 +190,25 @@ func (q *predictions) into(p *Predictive, noise *Noise, m int, circular bool) {
 			}
 		}
 		if flat := mass * noise.FlatWeight; flat > 0 {
+			// As dense wherever it falls, as in the update: beyond the span, too, an
+			// outlier says nothing of the spread.
+			as[m-1] += float64(flat * noise.FlatDensity)
+			wide[m-1] += float64(flat * noise.FlatDensity)
 			if m == 1 {
-				at := float64(r[0] * noise.FlatDensity)
-				sum[0].add(flat, uniformTails(at))
-				if math.Abs(at) <= 0.5 {
-					as[0] += float64(flat * noise.FlatDensity)
-					wide[0] += float64(flat * noise.FlatDensity)
+				rank := noise.FlatRank
+				if rank == 0 {
+					rank = FlatRank(r[0], -0.5/noise.FlatDensity, 0.5/noise.FlatDensity)
 				}
+				sum[0].add(flat, tails{rank, 1 - rank})
 				continue
 			}
 			side := math.Sqrt(noise.FlatDensity)
-			first := float64(r[0] * side)
-			sum[0].add(flat, uniformTails(first))
-			if math.Abs(first) <= 0.5 {
-				sum[1].add(flat*side, uniformTails(float64(r[1]*side)))
-				given += flat * side
-				wide[0] += flat * side
-				if math.Abs(float64(r[1]*side)) <= 0.5 {
-					as[1] += float64(flat * noise.FlatDensity)
-					wide[1] += float64(flat * noise.FlatDensity)
-				}
-			}
+			half := 0.5 / side
+			first, second := FlatRank(r[0], -half, half), FlatRank(r[1], -half, half)
+			sum[0].add(flat, tails{first, 1 - first})
+			sum[1].add(flat*side, tails{second, 1 - second})
+			given += flat * side
+			wide[0] += flat * side
 		}
 	}
 	p.Rows, p.Below[0], p.Above[0] = 1, sum[0].below, sum[0].above

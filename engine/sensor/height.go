@@ -35,7 +35,7 @@ import (
 //
 // Where the map knows no height the measurement has the density of a uniform
 // one over the suite's plausible heights, and says nothing about the
-// quantities: neither zero nor a made-up height.
+// quantities: neither zero nor a made-up height. Outliers are flat over them, too.
 //
 // What else the measurement depends on enters linearly (type offset).
 //
@@ -79,6 +79,7 @@ func (c *Context) heights(d Sensor, topM, distanceM, sigmaM, forward, right floa
 		nearest: d.BeamReturn == ReturnNearest, mapFactor: c.mapErrorFactor(),
 		flat: kernel.Log(density), noise: c.noise(d, variance1(sigmaM), density),
 	}
+	l.noise.FlatRank = filter.FlatRank(topM-distanceM, c.Suite.Vehicle.LowestM, c.Suite.Vehicle.HighestM)
 	half := geo.Rad(d.BeamWidthDeg) / 2
 	l.edgeS, l.edgeC = kernel.Sincos(half)
 	tau := geo.Rad(d.AttitudeSigmaDeg)

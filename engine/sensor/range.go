@@ -43,12 +43,14 @@ func (m Range) likelihood(c *Context, d Sensor) (any, error) {
 	if err != nil {
 		return nil, err
 	}
+	noise := c.noise(d, variance1(m.SigmaM), 1/d.maxRange())
+	noise.FlatRank = filter.FlatRank(m.RangeM, 0, d.maxRange())
 	return &ranging{
 		target: at, zM: m.RangeM, lengths: newLengths(c.Frame, c.Pose.At),
 		arm:        newArm(c, d.Mounting.ForwardM, d.Mounting.RightM),
 		lateralVar: square(c.Suite.Vehicle.LateralSigmaM),
 		nearM:      max(3*m.SigmaM, 4*c.CellM),
-		noise:      c.noise(d, variance1(m.SigmaM), 1/d.maxRange()),
+		noise:      noise,
 	}, nil
 }
 
