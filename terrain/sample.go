@@ -60,11 +60,13 @@ func (r *Raster) Sample(dst geo.Heights, eastM, northM []float64) {
 		return
 	}
 	variance := r.meta.SigmaM * r.meta.SigmaM
+	variances := dst.VarianceM2[:n]
 	for k, h := range dst.HeightM {
-		dst.VarianceM2[k] = 0
-		if h == h {
-			dst.VarianceM2[k] = variance
+		v := variance
+		if h != h {
+			v = 0
 		}
+		variances[k] = v
 	}
 }
 

@@ -4,6 +4,7 @@ import (
 	"math"
 
 	"leadline/engine/geo"
+	"leadline/engine/kernel"
 )
 
 // ScaleM returns the length over which a lattice belief changes: the standard
@@ -191,50 +192,31 @@ func (b *Belief) latticeMoments() latticeMoments {
 	return m
 }
 
-// moments are those in cells, the second ones not yet divided by the mass.
+// moments are those in cells, the second ones not yet divided by the mass: of each tile
+// about its own mean, and put together in the order of the tiles (Chan, Golub & LeVeque,
+// "Algorithms for computing the sample variance", Am. Stat. 37, 1983).
 func (t *Tiles) moments() (m latticeMoments) {
-	t.rows(func(north, west float64, row []float64) {
-		mass, mean := m.mass, m.mean
-		for x, v := range row {
-			if v != 0 {
-				mass += v
-				mean.E += float64(v * (west + float64(x)))
-				mean.N += float64(v * north)
-			}
-		}
-		m.mass, m.mean = mass, mean
-	})
-	if m.mass == 0 {
-		return m
-	}
-	m.mean.E /= m.mass
-	m.mean.N /= m.mass
-	t.rows(func(north, west float64, row []float64) {
-		dn := north - m.mean.N
-		dn2 := float64(dn * dn)
-		ee, en, nn := m.ee, m.en, m.nn
-		for x, v := range row {
-			if v != 0 {
-				de := west + float64(x) - m.mean.E
-				ee += float64(v * float64(de*de))
-				en += float64(v * float64(de*dn))
-				nn += float64(v * dn2)
-			}
-		}
-		m.ee, m.en, m.nn = ee, en, nn
-	})
-	return m
-}
-
-// rows calls use for the rows of all tiles: how far north a row lies and how far east its
-// first cell, in cells.
-func (t *Tiles) rows(use func(north, west float64, row []float64)) {
+	const middle = 0.5 * (TileSide - 1)
 	for i, at := range t.At {
-		tile := t.tile(i)
-		for r := range int32(TileSide) {
-			use(float64(at.Row*TileSide+r), float64(at.Col*TileSide), tile[r*TileSide:(r+1)*TileSide])
+		of := kernel.BlockMoments(t.tile(i), TileSide)
+		mass := of[0]
+		if mass == 0 {
+			continue
 		}
+		e, n := of[1]/mass, of[2]/mass
+		whole := m.mass + mass
+		dE := float64(at.Col*TileSide) + middle + e - m.mean.E
+		dN := float64(at.Row*TileSide) + middle + n - m.mean.N
+		share := mass / whole
+		by := float64(m.mass * share)
+		m.ee += of[3] - float64(of[1]*e) + float64(by*float64(dE*dE))
+		m.en += of[4] - float64(of[1]*n) + float64(by*float64(dE*dN))
+		m.nn += of[5] - float64(of[2]*n) + float64(by*float64(dN*dN))
+		m.mean.E += float64(dE * share)
+		m.mean.N += float64(dN * share)
+		m.mass = whole
 	}
+	return m
 }
 
 // swap installs the new tiles over a new lattice, with the mean of before and

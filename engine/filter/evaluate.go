@@ -43,14 +43,28 @@ func (w *Workspace) logsOf(e *evaluation) {
 		e.like.LogLikelihood(w.cellLogs, &w.at)
 		return
 	}
-	w.terms.Reset(n, e.lin.Rows(), 2)
-	e.lin.Linearize(&w.terms, &w.at, nil, nil)
+	w.linearize(e)
 	if e.nw.simple() {
 		w.densities(&e.nw, n, e.least)
 		return
 	}
 	for j := range n {
 		w.cellLogs[j] = e.nw.density(&w.terms, j, e.least)
+	}
+}
+
+// linearize sets w.terms to those at the places of w.at.
+func (w *Workspace) linearize(e *evaluation) {
+	w.terms.Reset(w.at.Len(), e.lin.Rows(), 2)
+	e.lin.Linearize(&w.terms, &w.at, nil, nil)
+}
+
+// likely is a simple noise in terms of densities.
+func (e *evaluation) likely() kernel.Likely {
+	part := &e.nw.parts[0]
+	return kernel.Likely{
+		Noise: part.Cov[0], Mean: part.Mean, Least: e.least,
+		Weight: float64(part.Weight * kernel.InvSqrt2Pi), Flat: float64(e.noise.FlatWeight * e.noise.FlatDensity),
 	}
 }
 

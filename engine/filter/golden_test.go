@@ -51,6 +51,7 @@ func scripted() (lines []string) {
 	}{
 		{"fork", fork(), filter.Anywhere{}, []filter.Quantity{{Name: filter.Along}, {Name: filter.OdometerScale, PriorVar: 1e-2}}},
 		{"lattice", plane.Open(geo.FromDegrees(7, 47), 500, 5), filter.AtPoint{SigmaM: 12}, nil},
+		{"simple", plane.Open(geo.FromDegrees(7, 47), 500, 5), filter.AtPoint{SigmaM: 40}, nil},
 		{"plane", plane.Open(geo.FromDegrees(7, 47), 500, 5), filter.AtPoint{SigmaM: 6}, []filter.Quantity{{Name: filter.East}, {Name: filter.North}, {Name: filter.Heading, Angular: true, PriorVar: 10}}},
 		{"velocities", plane.Open(geo.FromDegrees(7, 47), 500, 5), filter.AtPoint{SigmaM: 12}, velocityAxes(geo.Point{E: 2, N: -1}, 1.5)},
 	} {
@@ -77,6 +78,10 @@ func scripted() (lines []string) {
 				Parts:      []filter.NoisePart{{Weight: 0.9, Cov: [3]float64{30}}, {Weight: 0.06, Cov: [3]float64{400}}},
 				FlatWeight: 0.04, FlatDensity: 0.002,
 			}}
+			if c.name == "simple" { // by products with densities
+				l.Mixture.Parts = l.Mixture.Parts[:1]
+				l.Mixture.Parts[0].Weight = 0.96
+			}
 			e, err := filter.Update(b, c.space, l, &w)
 			if err != nil {
 				panic(err)

@@ -30,6 +30,7 @@ type Workspace struct {
 	logs, scratch []float64
 	blunt         []float32 // a lattice's cells: see noiseWork.blunt
 	keep          []bool    // and keepNear
+	faint         bool      // of outcomeOf
 	cells         []uint16  // those of a tile that have mass
 	cellLogs      []float64
 	residual      []float64 // and what densities works with

@@ -33,13 +33,13 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 		return b.updateGaussians(space, l, maxCells, w)
 	}
 	plane := space.(PlaneSpace)
-	b.logTiles(plane, l, w)
+	left := b.weighTiles(plane, l, true, w)
 	turns := w.turned()
 	var before *Belief // before is set once the lattice is another one
 	tight, weighed := 0.0, false
 	for range maxRefinements {
 		var cells int
-		cells, logEvidence, err = w.outcome(b.Tiles.Mass, cellFloor)
+		cells, logEvidence, err = w.outcomeOf(left, b.Tiles.Mass, cellFloor)
 		if weighed = err == nil; err != nil {
 			break
 		}
@@ -72,7 +72,7 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 		b.Lattice.SpacingM /= 2
 		b.dropEmptyTiles()
 		w.endTiles(u, b)
-		b.logTiles(plane, l, w)
+		left = b.weighTiles(plane, l, true, w)
 		weighed = false
 	}
 	share := 1.0
@@ -80,7 +80,7 @@ func UpdateWithin(b *Belief, space Space, l any, maxCells int, w *Workspace) (lo
 		share = sum(b.Tiles.Mass) / sum(before.Tiles.Mass)
 	}
 	if !weighed {
-		_, logEvidence, err = w.outcome(b.Tiles.Mass, cellFloor)
+		_, logEvidence, err = w.outcomeOf(left, b.Tiles.Mass, cellFloor)
 	}
 	if err == nil {
 		b.weighed(w)

@@ -161,8 +161,8 @@ func (b *Belief) fill(flat []float64, cols, rows int) {
 	b.dropEmptyTiles()
 }
 
-// foretellSlices is what logTiles does for who asked where a measurement falls, on the
+// foretellSlices is what weighTiles does for who asked where a measurement falls, on the
 // positions alone.
 func (b *Belief) foretellSlices(space PlaneSpace, l any, w *Workspace) {
-	b.margin(&w.slices).logTiles(space, l, w)
+	b.margin(&w.slices).weighTiles(space, l, false, w)
 }

@@ -40,21 +40,20 @@ func Try(b *Belief, space Space, l any, w *Workspace) (logEvidence float64, err 
 	if b.Map != space.Fingerprint() {
 		panic("filter: the belief was seeded over another map")
 	}
-	mass := b.Mass
 	if v, ok := l.(OfVelocity); ok && len(b.Axes) > 0 {
 		return b.Clone().weighVelocities(v)
 	}
-	if len(b.Axes) > 0 {
-		m := b.margin(&w.slices)
-		m.logTiles(space.(PlaneSpace), l, w)
-		mass = m.Tiles.Mass
-	} else if len(b.Quantities) == 0 {
-		b.logTiles(space.(PlaneSpace), l, w)
-		mass = b.Tiles.Mass
-	} else {
-		b.condition(space, l, w)
+	if len(b.Axes) > 0 || len(b.Quantities) == 0 {
+		m := b
+		if len(b.Axes) > 0 {
+			m = b.margin(&w.slices)
+		}
+		left := m.weighTiles(space.(PlaneSpace), l, false, w)
+		_, logEvidence, err = w.outcomeOf(left, m.Tiles.Mass, 0)
+		return logEvidence, err
 	}
-	w.scratch = append(w.scratch[:0], mass...)
+	b.condition(space, l, w)
+	w.scratch = append(w.scratch[:0], b.Mass...)
 	return weigh(w.scratch, w.logs)
 }
 
@@ -206,9 +205,18 @@ func (t *Terms) Reset(n, m, k int) {
 	t.Flat = resize(t.Flat, n)
 	clear(t.Row)
 	clear(t.Extra)
-	nan := math.NaN()
-	for i := range t.Flat {
-		t.Wide[i], t.Flat[i] = nan, nan
+	fill(t.Wide, math.NaN())
+	fill(t.Flat, math.NaN())
+}
+
+// fill writes a number everywhere.
+func fill(dst []float64, x float64) {
+	if len(dst) == 0 {
+		return
+	}
+	dst[0] = x
+	for n := 1; n < len(dst); n *= 2 {
+		copy(dst[n:], dst[:n])
 	}
 }
 

@@ -57,3 +57,23 @@ func beyond(sum *[4]float64, mass, w2, v, is []float64, r2, excess float64) {
 func samplePatch(p *Patch, height, slopeE, slopeN, east, north []float64) int {
 	return samplePatchPlain(p, height, slopeE, slopeN, east, north, 0)
 }
+
+func likely(l *Likely, sums *[8]float64, dst, mass, residual, row, extra, flat []float64, least float64) {
+	likelyPlain(l, sums, dst, mass, residual, row, extra, flat, least, 0)
+}
+
+func ground(g *Ground, residual, extra, row, flat, height, slopeE, slopeN, variance []float64) {
+	groundPlain(g, residual, extra, row, flat, height, slopeE, slopeN, variance, 0)
+}
+
+func sampleRow(p *Patch, r *rowOfPatch, height, slopeE, slopeN, east []float64) int {
+	return sampleRowPlain(p, r, height, slopeE, slopeN, east, 0)
+}
+
+func dense(src []float64) bool { return densePlain(src, 0) }
+
+func scaleBy(dst []float64, by, floor float64) (some, enough int) {
+	return scalePlain(dst, by, floor, 0)
+}
+
+func blockMoments(sums *[24]float64, src []float64, cols int) { blockMomentsPlain(sums, src, cols) }

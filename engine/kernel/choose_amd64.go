@@ -181,11 +181,85 @@ func beyond(sum *[4]float64, mass, w2, v, is []float64, r2, excess float64) {
 func samplePatch(p *Patch, height, slopeE, slopeN, east, north []float64) int {
 	n := 0
 	// Places in a raster are numbers of 32 bits there, and preparing costs as much as a few.
-	if vectors && len(height) > 7 && len(p.Heights) < 1<<29 && p.Cols > 1 && p.Rows > 1 && p.Cols <= len(p.Heights)/p.Rows {
+	if vectors && len(height) > 7 && p.in32() {
 		if !p.prepared {
 			p.prepare()
 		}
 		n = samplePatchAVX2(&height[0], &slopeE[0], &slopeN[0], &east[0], &north[0], &p.lanes[0], &p.Heights[0], len(height)&^3, p.Cols, p.Rows-2)
 	}
 	return samplePatchPlain(p, height, slopeE, slopeN, east, north, n)
+}
+
+func likely(l *Likely, sums *[8]float64, dst, mass, residual, row, extra, flat []float64, least float64) {
+	n := 0
+	if vectors {
+		if n = len(dst) &^ 3; n > 0 {
+			lanes := sixLanes(l.Noise, l.Mean, l.Least, l.Weight, l.Flat, least)
+			likelyAVX2(&sums[0], &dst[0], &mass[0], &residual[0], &row[0], &extra[0], &flat[0], &lanes[0], n)
+		}
+	}
+	likelyPlain(l, sums, dst, mass, residual, row, extra, flat, least, n)
+}
+
+func ground(g *Ground, residual, extra, row, flat, height, slopeE, slopeN, variance []float64) {
+	n := 0
+	if vectors {
+		if n = len(residual) &^ 3; n > 0 {
+			lanes := sixLanes(g.TopM, g.DistanceM, g.MapFactor, g.SlopeVar, g.Tilt, g.Flat)
+			groundAVX2(&residual[0], &extra[0], &row[0], &flat[0], &height[0], &slopeE[0], &slopeN[0], &variance[0], &lanes[0], n)
+		}
+	}
+	groundPlain(g, residual, extra, row, flat, height, slopeE, slopeN, variance, n)
+}
+
+// sixLanes has each number four times.
+func sixLanes(x ...float64) (lanes [24]float64) {
+	for k, v := range x {
+		lanes[4*k], lanes[4*k+1], lanes[4*k+2], lanes[4*k+3] = v, v, v, v
+	}
+	return lanes
+}
+
+// in32 says whether places in the raster are numbers of 32 bits.
+func (p *Patch) in32() bool {
+	return len(p.Heights) < 1<<29 && p.Cols > 1 && p.Rows > 1 && p.Cols <= len(p.Heights)/p.Rows
+}
+
+func sampleRow(p *Patch, r *rowOfPatch, height, slopeE, slopeN, east []float64) int {
+	n := 0
+	if vectors && len(height) > 3 && p.in32() {
+		n = sampleRowAVX2(&height[0], &slopeE[0], &slopeN[0], &east[0], &r[0], &p.Heights[0], len(height)&^3, p.Cols, p.Rows-2)
+	}
+	return sampleRowPlain(p, r, height, slopeE, slopeN, east, n)
+}
+
+func dense(src []float64) bool {
+	n := 0
+	if vectors {
+		if n = len(src) &^ 3; n > 0 && denseAVX2(&src[0], n) != 0 {
+			return false
+		}
+	}
+	return densePlain(src, n)
+}
+
+func scaleBy(dst []float64, by, floor float64) (some, enough int) {
+	n := 0
+	if vectors {
+		if n = len(dst) &^ 3; n > 0 {
+			some, enough = scaleAVX2(&dst[0], n, by, floor)
+		}
+	}
+	a, b := scalePlain(dst, by, floor, n)
+	return some + a, enough + b
+}
+
+func blockMoments(sums *[24]float64, src []float64, cols int) {
+	if !vectors {
+		blockMomentsPlain(sums, src, cols)
+		return
+	}
+	rows, first := len(src)/cols, -0.5*float64(cols-1)
+	x := [4]float64{first, first + 1, first + 2, first + 3}
+	blockMomentsAVX2(&sums[0], &src[0], &x[0], cols, rows, -0.5*float64(rows-1))
 }

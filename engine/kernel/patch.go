@@ -47,9 +47,31 @@ func (p *Patch) prepare() {
 // Sample writes heights and their gradients (east, north) at places until one is outside
 // the box, and returns how many. A height that is unknown, off the raster or beside a NaN,
 // is NaN, and its gradient 0.
+//
+// Of places after one another that have one north, leastRow or more, columns and rows are
+// polynomials of u alone, made once: they differ by rounding, a few 1e-16 of the greatest term.
 func (p *Patch) Sample(height, slopeE, slopeN, east, north []float64) int {
 	n := len(height)
-	return samplePatch(p, height, slopeE[:n], slopeN[:n], east[:n], north[:n])
+	slopeE, slopeN, east, north = slopeE[:n], slopeN[:n], east[:n], north[:n]
+	var r rowOfPatch
+	for k := 0; k < n; {
+		to := k + equals(north[k:])
+		var done int
+		if to-k < leastRow {
+			for to < n && to-k < leastRow {
+				to += equals(north[to:])
+			}
+			done = k + samplePatch(p, height[k:to], slopeE[k:to], slopeN[k:to], east[k:to], north[k:to])
+		} else if !r.at(p, north[k]) {
+			return k
+		} else {
+			done = k + sampleRow(p, &r, height[k:to], slopeE[k:to], slopeN[k:to], east[k:to])
+		}
+		if k = done; k < to {
+			return k
+		}
+	}
+	return n
 }
 
 // samplePatchPlain is Patch.Sample in plain Go, from index k on.
@@ -59,24 +81,9 @@ func samplePatchPlain(p *Patch, height, slopeE, slopeN, east, north []float64, k
 		if !(fe >= p.LowE && fe < p.HighE && fn >= p.LowN && fn < p.HighN) {
 			return k
 		}
-		h, se, sn := unknown, 0.0, 0.0
 		col, cu, cv := quadratic(&p.Col, fe-p.LowE, fn-p.LowN)
 		row, ru, rv := quadratic(&p.Row, fe-p.LowE, fn-p.LowN)
-		if col >= p.LeastCol && col <= p.MostCol && row >= p.LeastRow && row <= p.MostRow {
-			c := max(0, min(int(col), p.Cols-2))
-			w := max(0, min(int(row), p.Rows-2))
-			u, v := col-float64(c), row-float64(w)
-			at := w*p.Cols + c
-			first, second := p.Heights[at:at+2:at+2], p.Heights[at+p.Cols:at+p.Cols+2:at+p.Cols+2]
-			h00 := float64(first[0])
-			dc, dr := float64(first[1])-h00, float64(second[0])-h00
-			twist := float64(second[1]) - float64(second[0]) - dc
-			if at := h00 + float64(u*dc) + float64(v*dr) + float64(u*v*twist); at == at {
-				hc, hr := (dc+float64(v*twist))*p.PerM, (dr+float64(u*twist))*p.PerM
-				h, se, sn = at, float64(hc*cu)+float64(hr*ru), float64(hc*cv)+float64(hr*rv)
-			}
-		}
-		height[k], slopeE[k], slopeN[k] = h, se, sn
+		height[k], slopeE[k], slopeN[k] = p.bilinear(col, row, cu, cv, ru, rv)
 	}
 	return k
 }

@@ -93,3 +93,33 @@ func beyondAVX2(sum *float64, mass *float64, w2 *float64, v *float64, is *float6
 //
 //go:noescape
 func samplePatchAVX2(height *float64, slopeE *float64, slopeN *float64, east *float64, north *float64, lanes *float64, heights *float32, n int, cols int, lastRow int) (done int)
+
+// sampleRowAVX2 is sampleRowPlain for n places, a multiple of 4, up to the first four of which one is outside the box; numbers are the rowOfPatch, lastRow two less than the raster's rows.
+//
+//go:noescape
+func sampleRowAVX2(height *float64, slopeE *float64, slopeN *float64, east *float64, numbers *float64, heights *float32, n int, cols int, lastRow int) (done int)
+
+// likelyAVX2 is likelyPlain for n values, a multiple of 4; lanes are Noise, Mean, Least, Weight, Flat and least, each in four.
+//
+//go:noescape
+func likelyAVX2(sums *float64, dst *float64, mass *float64, residual *float64, row *float64, extra *float64, flat *float64, lanes *float64, n int)
+
+// denseAVX2 is densePlain for n values, a multiple of 4; other than 0 for false.
+//
+//go:noescape
+func denseAVX2(src *float64, n int) (zeros int)
+
+// scaleAVX2 is scalePlain for n values, a multiple of 4.
+//
+//go:noescape
+func scaleAVX2(dst *float64, n int, by float64, floor float64) (some int, enough int)
+
+// blockMomentsAVX2 is blockMomentsPlain; x are the first four columns', y the first row's cells from the middle.
+//
+//go:noescape
+func blockMomentsAVX2(sums *float64, src *float64, x *float64, cols int, rows int, y float64)
+
+// groundAVX2 is groundPlain for n values, a multiple of 4; lanes are Ground's numbers, each in four.
+//
+//go:noescape
+func groundAVX2(residual *float64, extra *float64, row *float64, flat *float64, height *float64, slopeE *float64, slopeN *float64, variance *float64, lanes *float64, n int)

@@ -1071,6 +1071,12 @@ DATA signBit<>+16(SB)/8, $0x8000000000000000
 DATA signBit<>+24(SB)/8, $0x8000000000000000
 GLOBL signBit<>(SB), RODATA|NOPTR, $32
 
+DATA unknown<>+0(SB)/8, $0x7ff8000000000001
+DATA unknown<>+8(SB)/8, $0x7ff8000000000001
+DATA unknown<>+16(SB)/8, $0x7ff8000000000001
+DATA unknown<>+24(SB)/8, $0x7ff8000000000001
+GLOBL unknown<>(SB), RODATA|NOPTR, $32
+
 DATA exp2<>+0(SB)/8, $0x3fe0000000000000
 DATA exp2<>+8(SB)/8, $0x3fe0000000000000
 DATA exp2<>+16(SB)/8, $0x3fe0000000000000
@@ -2134,8 +2140,460 @@ done:
 	VZEROUPPER
 	RET
 
-DATA unknown<>+0(SB)/8, $0x7ff8000000000001
-DATA unknown<>+8(SB)/8, $0x7ff8000000000001
-DATA unknown<>+16(SB)/8, $0x7ff8000000000001
-DATA unknown<>+24(SB)/8, $0x7ff8000000000001
-GLOBL unknown<>(SB), RODATA|NOPTR, $32
+// func sampleRowAVX2(height *float64, slopeE *float64, slopeN *float64, east *float64, numbers *float64, heights *float32, n int, cols int, lastRow int) (done int)
+// Requires: AVX
+TEXT ·sampleRowAVX2(SB), NOSPLIT, $0-80
+	MOVQ height+0(FP), AX
+	MOVQ slopeE+8(FP), CX
+	MOVQ slopeN+16(FP), DX
+	MOVQ east+24(FP), BX
+	MOVQ numbers+32(FP), SI
+	MOVQ heights+40(FP), DI
+	MOVQ cols+56(FP), R8
+	XORQ R9, R9
+
+next:
+	MOVQ         n+48(FP), R10
+	CMPQ         R9, R10
+	JGE          done
+	VMOVUPD      (BX)(R9*8), Y0
+	VBROADCASTSD (SI), Y1
+	VSUBPD       Y1, Y0, Y0
+	VBROADCASTSD 8(SI), Y1
+	VMULPD       Y1, Y0, Y0
+	VBROADCASTSD 16(SI), Y1
+	VCMPPD       $0x1d, Y1, Y0, Y1
+	VBROADCASTSD 24(SI), Y2
+	VCMPPD       $0x11, Y2, Y0, Y2
+	VANDPD       Y2, Y1, Y1
+	VBROADCASTSD 16(SI), Y2
+	VSUBPD       Y2, Y0, Y0
+	VMOVMSKPD    Y1, R10
+	CMPL         R10, $0x0f
+	JNE          done
+	VBROADCASTSD 80(SI), Y1
+	VMULPD       Y1, Y0, Y1
+	VBROADCASTSD 72(SI), Y2
+	VADDPD       Y2, Y1, Y1
+	VMULPD       Y1, Y0, Y1
+	VBROADCASTSD 64(SI), Y2
+	VADDPD       Y2, Y1, Y1
+	VBROADCASTSD 112(SI), Y2
+	VMULPD       Y2, Y0, Y3
+	VBROADCASTSD 104(SI), Y2
+	VADDPD       Y2, Y3, Y3
+	VMULPD       Y3, Y0, Y3
+	VBROADCASTSD 96(SI), Y2
+	VADDPD       Y2, Y3, Y3
+	VBROADCASTSD 88(SI), Y2
+	VMULPD       Y2, Y0, Y2
+	VBROADCASTSD 72(SI), Y4
+	VADDPD       Y4, Y2, Y2
+	VBROADCASTSD 32(SI), Y4
+	VCMPPD       $0x1d, Y4, Y1, Y5
+	VMOVAPD      Y5, Y4
+	VBROADCASTSD 40(SI), Y5
+	VCMPPD       $0x12, Y5, Y1, Y5
+	VANDPD       Y5, Y4, Y4
+	VPXOR        X5, X5, X5
+	LEAQ         -2(R8), R10
+	VMOVD        R10, X6
+	VPSHUFD      $0x00, X6, X6
+	VCVTTPD2DQY  Y1, X7
+	VPMINSD      X6, X7, X7
+	VPMAXSD      X5, X7, X7
+	VCVTDQ2PD    X7, Y6
+	VSUBPD       Y6, Y1, Y1
+	VBROADCASTSD 136(SI), Y6
+	VMULPD       Y6, Y0, Y8
+	VBROADCASTSD 128(SI), Y6
+	VADDPD       Y6, Y8, Y8
+	VMULPD       Y8, Y0, Y8
+	VBROADCASTSD 120(SI), Y6
+	VADDPD       Y6, Y8, Y8
+	VBROADCASTSD 168(SI), Y6
+	VMULPD       Y6, Y0, Y9
+	VBROADCASTSD 160(SI), Y6
+	VADDPD       Y6, Y9, Y9
+	VMULPD       Y9, Y0, Y9
+	VBROADCASTSD 152(SI), Y6
+	VADDPD       Y6, Y9, Y9
+	VBROADCASTSD 144(SI), Y6
+	VMULPD       Y6, Y0, Y0
+	VBROADCASTSD 128(SI), Y6
+	VADDPD       Y6, Y0, Y0
+	VBROADCASTSD 48(SI), Y6
+	VCMPPD       $0x1d, Y6, Y8, Y6
+	VANDPD       Y6, Y4, Y4
+	VBROADCASTSD 56(SI), Y6
+	VCMPPD       $0x12, Y6, Y8, Y6
+	VANDPD       Y6, Y4, Y4
+	MOVQ         lastRow+64(FP), R10
+	VMOVD        R10, X6
+	VPSHUFD      $0x00, X6, X6
+	VCVTTPD2DQY  Y8, X10
+	VPMINSD      X6, X10, X10
+	VPMAXSD      X5, X10, X10
+	VCVTDQ2PD    X10, Y5
+	VSUBPD       Y5, Y8, Y8
+	VMOVD        R8, X6
+	VPSHUFD      $0x00, X6, X6
+	VPMULLD      X6, X10, X10
+	VPADDD       X7, X10, X10
+	VPEXTRD      $0x00, X10, R10
+	VPEXTRD      $0x01, X10, R11
+	VMOVSD       (DI)(R10*4), X5
+	VMOVHPS      (DI)(R11*4), X5, X5
+	VPEXTRD      $0x02, X10, R10
+	VPEXTRD      $0x03, X10, R11
+	VMOVSD       (DI)(R10*4), X6
+	VMOVHPS      (DI)(R11*4), X6, X6
+	VSHUFPS      $0x88, X6, X5, X7
+	VCVTPS2PD    X7, Y11
+	VSHUFPS      $0xdd, X6, X5, X7
+	VCVTPS2PD    X7, Y5
+	VSUBPD       Y11, Y5, Y5
+	LEAQ         (DI)(R8*4), R12
+	VPEXTRD      $0x00, X10, R10
+	VPEXTRD      $0x01, X10, R11
+	VMOVSD       (R12)(R10*4), X6
+	VMOVHPS      (R12)(R11*4), X6, X6
+	VPEXTRD      $0x02, X10, R10
+	VPEXTRD      $0x03, X10, R11
+	VMOVSD       (R12)(R10*4), X7
+	VMOVHPS      (R12)(R11*4), X7, X7
+	VSHUFPS      $0x88, X7, X6, X10
+	VCVTPS2PD    X10, Y12
+	VSHUFPS      $0xdd, X7, X6, X10
+	VCVTPS2PD    X10, Y6
+	VSUBPD       Y12, Y6, Y6
+	VSUBPD       Y5, Y6, Y6
+	VSUBPD       Y11, Y12, Y12
+	VMULPD       Y5, Y1, Y7
+	VADDPD       Y7, Y11, Y11
+	VMULPD       Y12, Y8, Y7
+	VADDPD       Y7, Y11, Y11
+	VMULPD       Y8, Y1, Y7
+	VMULPD       Y6, Y7, Y7
+	VADDPD       Y7, Y11, Y11
+	VCMPPD       $0x00, Y11, Y11, Y7
+	VANDPD       Y7, Y4, Y4
+	VMULPD       Y6, Y8, Y7
+	VADDPD       Y7, Y5, Y5
+	VBROADCASTSD 8(SI), Y7
+	VMULPD       Y7, Y5, Y5
+	VMULPD       Y6, Y1, Y7
+	VADDPD       Y7, Y12, Y12
+	VBROADCASTSD 8(SI), Y1
+	VMULPD       Y1, Y12, Y12
+	VMULPD       Y2, Y5, Y2
+	VMULPD       Y0, Y12, Y0
+	VADDPD       Y0, Y2, Y2
+	VANDPD       Y4, Y2, Y2
+	VMOVUPD      Y2, (CX)(R9*8)
+	VMULPD       Y3, Y5, Y3
+	VMULPD       Y9, Y12, Y9
+	VADDPD       Y9, Y3, Y3
+	VANDPD       Y4, Y3, Y3
+	VMOVUPD      Y3, (DX)(R9*8)
+	VMOVUPD      unknown<>+0(SB), Y7
+	VBLENDVPD    Y4, Y11, Y7, Y11
+	VMOVUPD      Y11, (AX)(R9*8)
+	ADDQ         $0x04, R9
+	JMP          next
+
+done:
+	MOVQ R9, done+72(FP)
+	VZEROUPPER
+	RET
+
+// func likelyAVX2(sums *float64, dst *float64, mass *float64, residual *float64, row *float64, extra *float64, flat *float64, lanes *float64, n int)
+// Requires: AVX, AVX2
+TEXT ·likelyAVX2(SB), NOSPLIT, $0-72
+	MOVQ    dst+8(FP), AX
+	MOVQ    mass+16(FP), CX
+	MOVQ    residual+24(FP), DX
+	MOVQ    row+32(FP), BX
+	MOVQ    extra+40(FP), SI
+	MOVQ    flat+48(FP), DI
+	MOVQ    lanes+56(FP), R8
+	MOVQ    n+64(FP), R9
+	MOVQ    sums+0(FP), R10
+	VMOVUPD (R10), Y0
+	VMOVUPD 32(R10), Y1
+	XORQ    R11, R11
+
+next:
+	CMPQ       R11, R9
+	JGE        done
+	VMOVUPD    (BX)(R11*8), Y2
+	VMOVUPD    32(BX)(R11*8), Y3
+	VMULPD     Y2, Y2, Y2
+	VMULPD     Y3, Y3, Y3
+	VHADDPD    Y3, Y2, Y3
+	VPERMPD    $0xd8, Y3, Y3
+	VMULPD     64(R8), Y3, Y3
+	VMOVUPD    (R8), Y2
+	VADDPD     (SI)(R11*8), Y2, Y2
+	VMAXPD     Y2, Y3, Y2
+	VMOVUPD    one<>+0(SB), Y3
+	VDIVPD     Y2, Y3, Y2
+	VMOVUPD    (DX)(R11*8), Y4
+	VSUBPD     32(R8), Y4, Y4
+	VMULPD     Y4, Y4, Y4
+	VMULPD     Y2, Y4, Y4
+	VMULPD     minusHalf<>+0(SB), Y4, Y4
+	VSQRTPD    Y2, Y2
+	VMULPD     96(R8), Y2, Y2
+	VMOVUPD    (DI)(R11*8), Y3
+	VCMPPD     $0x03, Y3, Y3, Y5
+	VBLENDVPD  Y5, Y4, Y3, Y4
+	VMOVUPD    one<>+0(SB), Y3
+	VBLENDVPD  Y5, Y2, Y3, Y2
+	VANDPD     128(R8), Y5, Y5
+	VCMPPD     $0x03, Y4, Y4, Y3
+	VCMPPD     $0x0d, expLeast<>+0(SB), Y4, Y6
+	VMAXPD     expClamp<>+0(SB), Y4, Y4
+	VMULPD     perLn2<>+0(SB), Y4, Y7
+	VADDPD     half<>+0(SB), Y7, Y7
+	VROUNDPD   $0x09, Y7, Y7
+	VMULPD     ln2High<>+0(SB), Y7, Y8
+	VSUBPD     Y8, Y4, Y4
+	VMULPD     ln2Low<>+0(SB), Y7, Y8
+	VSUBPD     Y8, Y4, Y4
+	VMULPD     exp13<>+0(SB), Y4, Y9
+	VADDPD     exp12<>+0(SB), Y9, Y9
+	VMULPD     Y4, Y9, Y9
+	VADDPD     exp11<>+0(SB), Y9, Y9
+	VMULPD     Y4, Y9, Y9
+	VADDPD     exp10<>+0(SB), Y9, Y9
+	VMULPD     Y4, Y9, Y9
+	VADDPD     exp9<>+0(SB), Y9, Y9
+	VMULPD     Y4, Y9, Y9
+	VADDPD     exp8<>+0(SB), Y9, Y9
+	VMULPD     Y4, Y9, Y9
+	VADDPD     exp7<>+0(SB), Y9, Y9
+	VMULPD     Y4, Y9, Y9
+	VADDPD     exp6<>+0(SB), Y9, Y9
+	VMULPD     Y4, Y9, Y9
+	VADDPD     exp5<>+0(SB), Y9, Y9
+	VMULPD     Y4, Y9, Y9
+	VADDPD     exp4<>+0(SB), Y9, Y9
+	VMULPD     Y4, Y9, Y9
+	VADDPD     exp3<>+0(SB), Y9, Y9
+	VMULPD     Y4, Y9, Y9
+	VADDPD     exp2<>+0(SB), Y9, Y9
+	VMULPD     Y4, Y9, Y9
+	VMULPD     Y4, Y9, Y9
+	VADDPD     Y4, Y9, Y9
+	VADDPD     one<>+0(SB), Y9, Y9
+	VMAXPD     expLowest<>+0(SB), Y7, Y4
+	VSUBPD     Y4, Y7, Y7
+	VCVTPD2DQY Y4, X4
+	VPMOVSXDQ  X4, Y8
+	VPADDQ     expBias<>+0(SB), Y8, Y8
+	VPSLLQ     $0x34, Y8, Y8
+	VMULPD     Y8, Y9, Y9
+	VCVTPD2DQY Y7, X4
+	VPMOVSXDQ  X4, Y8
+	VPADDQ     expBias<>+0(SB), Y8, Y8
+	VPSLLQ     $0x34, Y8, Y8
+	VMULPD     Y8, Y9, Y9
+	VANDPD     Y6, Y9, Y9
+	VMULPD     Y2, Y9, Y9
+	VADDPD     Y5, Y9, Y9
+	VORPD      Y3, Y9, Y9
+	VMOVUPD    (CX)(R11*8), Y3
+	VADDPD     Y3, Y1, Y1
+	VMULPD     Y3, Y9, Y9
+	VCMPPD     $0x0d, 160(R8), Y3, Y3
+	VANDPD     Y3, Y9, Y9
+	VMOVUPD    Y9, (AX)(R11*8)
+	VADDPD     Y9, Y0, Y0
+	ADDQ       $0x04, R11
+	ADDQ       $0x20, BX
+	JMP        next
+
+done:
+	VMOVUPD Y0, (R10)
+	VMOVUPD Y1, 32(R10)
+	VZEROUPPER
+	RET
+
+// func denseAVX2(src *float64, n int) (zeros int)
+// Requires: AVX
+TEXT ·denseAVX2(SB), NOSPLIT, $0-24
+	MOVQ   src+0(FP), AX
+	MOVQ   n+8(FP), CX
+	VXORPD Y0, Y0, Y0
+	VXORPD Y1, Y1, Y1
+
+four:
+	VCMPPD    $0x00, (AX), Y0, Y2
+	VORPD     Y2, Y1, Y1
+	ADDQ      $0x20, AX
+	SUBQ      $0x04, CX
+	JNZ       four
+	VMOVMSKPD Y1, AX
+	MOVQ      AX, zeros+16(FP)
+	VZEROUPPER
+	RET
+
+// func scaleAVX2(dst *float64, n int, by float64, floor float64) (some int, enough int)
+// Requires: AVX, AVX2
+TEXT ·scaleAVX2(SB), NOSPLIT, $0-48
+	MOVQ         dst+0(FP), AX
+	MOVQ         n+8(FP), CX
+	VBROADCASTSD by+16(FP), Y0
+	VBROADCASTSD floor+24(FP), Y1
+	VXORPD       Y2, Y2, Y2
+	VXORPD       Y5, Y5, Y5
+	VXORPD       Y6, Y6, Y6
+
+four:
+	VMULPD       (AX), Y0, Y3
+	VMOVUPD      Y3, (AX)
+	VCMPPD       $0x1e, Y2, Y3, Y4
+	VPSUBQ       Y4, Y5, Y5
+	VCMPPD       $0x1d, Y1, Y3, Y4
+	VPSUBQ       Y4, Y6, Y6
+	ADDQ         $0x20, AX
+	SUBQ         $0x04, CX
+	JNZ          four
+	VEXTRACTI128 $0x01, Y5, X0
+	VPADDQ       X0, X5, X5
+	VPSHUFD      $0x4e, X5, X0
+	VPADDQ       X0, X5, X5
+	VMOVQ        X5, AX
+	MOVQ         AX, some+32(FP)
+	VEXTRACTI128 $0x01, Y6, X0
+	VPADDQ       X0, X6, X6
+	VPSHUFD      $0x4e, X6, X0
+	VPADDQ       X0, X6, X6
+	VMOVQ        X6, AX
+	MOVQ         AX, enough+40(FP)
+	VZEROUPPER
+	RET
+
+// func blockMomentsAVX2(sums *float64, src *float64, x *float64, cols int, rows int, y float64)
+// Requires: AVX
+TEXT ·blockMomentsAVX2(SB), NOSPLIT, $0-48
+	MOVQ         src+8(FP), AX
+	MOVQ         x+16(FP), CX
+	MOVQ         cols+24(FP), DX
+	MOVQ         rows+32(FP), BX
+	VBROADCASTSD y+40(FP), Y2
+	VMOVUPD      (CX), Y0
+	VMOVUPD      four<>+0(SB), Y1
+	VXORPD       Y3, Y3, Y3
+	VXORPD       Y4, Y4, Y4
+	VXORPD       Y5, Y5, Y5
+	VXORPD       Y6, Y6, Y6
+	VXORPD       Y7, Y7, Y7
+	VXORPD       Y8, Y8, Y8
+
+row:
+	VMOVAPD Y0, Y9
+	VXORPD  Y11, Y11, Y11
+	VXORPD  Y12, Y12, Y12
+	VXORPD  Y13, Y13, Y13
+	MOVQ    DX, CX
+
+columns:
+	VMOVUPD (AX), Y10
+	VADDPD  Y10, Y11, Y11
+	VMULPD  Y10, Y9, Y10
+	VADDPD  Y10, Y12, Y12
+	VMULPD  Y10, Y9, Y10
+	VADDPD  Y10, Y13, Y13
+	VADDPD  Y1, Y9, Y9
+	ADDQ    $0x20, AX
+	SUBQ    $0x04, CX
+	JNZ     columns
+	VADDPD  Y11, Y3, Y3
+	VADDPD  Y12, Y4, Y4
+	VADDPD  Y13, Y6, Y6
+	VMULPD  Y2, Y11, Y11
+	VADDPD  Y11, Y5, Y5
+	VMULPD  Y2, Y12, Y12
+	VADDPD  Y12, Y7, Y7
+	VMULPD  Y2, Y11, Y11
+	VADDPD  Y11, Y8, Y8
+	VADDPD  one<>+0(SB), Y2, Y2
+	DECQ    BX
+	JNZ     row
+	MOVQ    sums+0(FP), AX
+	VMOVUPD Y3, (AX)
+	VMOVUPD Y4, 32(AX)
+	VMOVUPD Y5, 64(AX)
+	VMOVUPD Y6, 96(AX)
+	VMOVUPD Y7, 128(AX)
+	VMOVUPD Y8, 160(AX)
+	VZEROUPPER
+	RET
+
+DATA four<>+0(SB)/8, $0x4010000000000000
+DATA four<>+8(SB)/8, $0x4010000000000000
+DATA four<>+16(SB)/8, $0x4010000000000000
+DATA four<>+24(SB)/8, $0x4010000000000000
+GLOBL four<>(SB), RODATA|NOPTR, $32
+
+// func groundAVX2(residual *float64, extra *float64, row *float64, flat *float64, height *float64, slopeE *float64, slopeN *float64, variance *float64, lanes *float64, n int)
+// Requires: AVX
+TEXT ·groundAVX2(SB), NOSPLIT, $0-80
+	MOVQ    residual+0(FP), AX
+	MOVQ    extra+8(FP), CX
+	MOVQ    row+16(FP), DX
+	MOVQ    flat+24(FP), BX
+	MOVQ    height+32(FP), SI
+	MOVQ    slopeE+40(FP), DI
+	MOVQ    slopeN+48(FP), R8
+	MOVQ    variance+56(FP), R9
+	MOVQ    lanes+64(FP), R10
+	MOVQ    n+72(FP), R11
+	VMOVUPD (R10), Y0
+	VMOVUPD 32(R10), Y1
+	VMOVUPD 64(R10), Y2
+	VMOVUPD 96(R10), Y3
+	VMOVUPD 128(R10), Y4
+	VMOVUPD 160(R10), Y5
+	XORQ    R10, R10
+
+next:
+	CMPQ       R10, R11
+	JGE        done
+	VMOVUPD    (SI)(R10*8), Y6
+	VCMPPD     $0x07, Y6, Y6, Y7
+	VSUBPD     Y6, Y0, Y6
+	VSUBPD     Y1, Y6, Y6
+	VANDPD     Y7, Y6, Y6
+	VMOVUPD    Y6, (AX)(R10*8)
+	VMOVUPD    (DI)(R10*8), Y8
+	VMOVUPD    (R8)(R10*8), Y9
+	VMULPD     Y8, Y8, Y6
+	VMULPD     Y9, Y9, Y10
+	VADDPD     Y10, Y6, Y6
+	VMULPD     Y3, Y6, Y6
+	VMULPD     (R9)(R10*8), Y2, Y10
+	VADDPD     Y6, Y10, Y10
+	VADDPD     Y4, Y10, Y10
+	VANDPD     Y7, Y10, Y10
+	VMOVUPD    Y10, (CX)(R10*8)
+	VANDPD     Y7, Y8, Y8
+	VANDPD     Y7, Y9, Y9
+	VUNPCKLPD  Y9, Y8, Y6
+	VUNPCKHPD  Y9, Y8, Y8
+	VPERM2F128 $0x20, Y8, Y6, Y10
+	VPERM2F128 $0x31, Y8, Y6, Y6
+	VMOVUPD    Y10, (DX)(R10*8)
+	VMOVUPD    Y6, 32(DX)(R10*8)
+	VMOVUPD    unknown<>+0(SB), Y10
+	VBLENDVPD  Y7, Y10, Y5, Y10
+	VMOVUPD    Y10, (BX)(R10*8)
+	ADDQ       $0x04, R10
+	ADDQ       $0x20, DX
+	JMP        next
+
+done:
+	VZEROUPPER
+	RET

@@ -222,18 +222,9 @@ func (l *heights) Linearize(t *filter.Terms, at *filter.Columns, qs []filter.Qua
 // below is Linearize for what is measured straight below on a plane, in which nothing but
 // the position enters, as on a lattice: the same to the bit.
 func (l *heights) below(t *filter.Terms, at *filter.Columns) {
-	n := at.Len()
-	slopeE, slopeN, variance := at.SlopeE[:n], at.SlopeN[:n], at.HeightVar[:n]
-	residual, extra, row, flat := t.Residual[:n], t.Extra[:n], t.Row[:2*n], t.Flat[:n]
-	mine := l.slopeVar + l.arm.unknownVar
-	for i, h := range at.Height[:n] {
-		if h != h {
-			flat[i] = l.flat
-			continue
-		}
-		sE, sN := slopeE[i], slopeN[i]
-		residual[i] = l.topM - h - l.distanceM
-		extra[i] = float64(l.mapFactor*variance[i]) + float64((float64(sE*sE)+float64(sN*sN))*mine) + l.tiltVar
-		row[2*i], row[2*i+1] = sE, sN
+	g := kernel.Ground{
+		TopM: l.topM, DistanceM: l.distanceM,
+		MapFactor: l.mapFactor, SlopeVar: l.slopeVar + l.arm.unknownVar, Tilt: l.tiltVar, Flat: l.flat,
 	}
+	g.Terms(t.Residual, t.Extra, t.Row, t.Flat, at.Height, at.SlopeE, at.SlopeN, at.HeightVar)
 }

@@ -32,5 +32,11 @@ func main() {
 	normalFraction(c)
 	beyond(c)
 	samplePatch(c)
+	sampleRow(c)
+	likely(c)
+	dense()
+	scaleBy()
+	blockMoments(c)
+	ground(c)
 	Generate()
 }

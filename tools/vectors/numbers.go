@@ -29,7 +29,7 @@ type numbers struct {
 	expTerms, logTerms                    []Mem // from the constant term on
 	bias, fraction, halfExponent, float52 Mem
 	halfBits, rootHalf, minusHalf, logZ   Mem
-	signBit                               Mem
+	signBit, unknown                      Mem
 }
 
 func constants() *numbers {
@@ -41,7 +41,7 @@ func constants() *numbers {
 		fraction: allLanes("fraction", 1<<52-1), halfExponent: allLanes("halfExponent", 1022<<52),
 		float52: number("float52", 1<<52), halfBits: number("halfBits", 1<<52+1022), rootHalf: number("rootHalf", math.Sqrt2/2),
 		minusHalf: number("minusHalf", -0.5), logZ: number("logSqrt2Pi", 0.918938533204672741780329736406),
-		signBit: allLanes("signBit", 1<<63),
+		signBit: allLanes("signBit", 1<<63), unknown: allLanes("unknown", 0x7ff8000000000001),
 	}
 	factorial := 1.0
 	for i := 2; i <= 13; i++ {

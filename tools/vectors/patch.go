@@ -18,8 +18,8 @@ func samplePatch(c *numbers) {
 	heights, cols := Load(Param("heights"), GP64()), Load(Param("cols"), GP64())
 	i, left := GP64(), GP32()
 	XORQ(i, i)
-	number := func(k int) Mem { return Mem{Base: lanes, Disp: 32 * k} }
-	const minE, minN, perM, lowE, highE, lowN, highN, col0, row0, leastCol, mostCol, leastRow, mostRow = 0, 1, 2, 3, 4, 5, 6, 7, 16, 25, 26, 27, 28
+	number := func(k int) Op { return Mem{Base: lanes, Disp: 32 * k} }
+	const minE, minN, perM, lowE, highE, lowN, highN, col0, row0, leastCol = 0, 1, 2, 3, 4, 5, 6, 7, 16, 25
 	at := func(of Register) Mem { return Mem{Base: of, Index: i, Scale: 8} }
 	Label("next")
 	CMPQ(i, Load(Param("n"), GP64()))
@@ -74,7 +74,75 @@ func samplePatch(c *numbers) {
 		VADDPD(p[2], fv, fv)
 		return f, fu, fv
 	}
-	col, cu, cv := quadratic(col0)
+	p := &bilinear{c, number, leastCol, perM, height, slopeE, slopeN, heights, cols, i}
+	p.sample(func() (f, fu, fv VecVirtual) { return quadratic(col0) }, func() (f, fu, fv VecVirtual) { return quadratic(row0) })
+}
+
+// sampleRow is kernel.Patch.Sample of places that have one north.
+func sampleRow(c *numbers) {
+	TEXT("sampleRowAVX2", NOSPLIT, "func(height, slopeE, slopeN, east, numbers *float64, heights *float32, n, cols, lastRow int) (done int)")
+	Pragma("noescape")
+	Doc("sampleRowAVX2 is sampleRowPlain for n places, a multiple of 4, up to the first four of which one is outside the box; numbers are the rowOfPatch, lastRow two less than the raster's rows.")
+	height, slopeE, slopeN := Load(Param("height"), GP64()), Load(Param("slopeE"), GP64()), Load(Param("slopeN"), GP64())
+	east, numbers := Load(Param("east"), GP64()), Load(Param("numbers"), GP64())
+	heights, cols := Load(Param("heights"), GP64()), Load(Param("cols"), GP64())
+	i, left := GP64(), GP32()
+	XORQ(i, i)
+	number := func(k int) Op {
+		x := YMM()
+		VBROADCASTSD(Mem{Base: numbers, Disp: 8 * k}, x)
+		return x
+	}
+	const minE, perM, lowE, highE, leastCol, col0, row0 = 0, 1, 2, 3, 4, 8, 15
+	Label("next")
+	CMPQ(i, Load(Param("n"), GP64()))
+	JGE(LabelRef("done"))
+	u, inside, t := YMM(), YMM(), YMM()
+	VMOVUPD(Mem{Base: east, Index: i, Scale: 8}, u)
+	VSUBPD(number(minE), u, u)
+	VMULPD(number(perM), u, u)
+	VCMPPD(Imm(0x1d), number(lowE), u, inside)
+	VCMPPD(Imm(0x11), number(highE), u, t)
+	VANDPD(t, inside, inside)
+	VSUBPD(number(lowE), u, u)
+	VMOVMSKPD(inside, left)
+	CMPL(left, Imm(15))
+	JNE(LabelRef("done"))
+	// A polynomial of u and its derivative, and that by v.
+	quadratic := func(a int) (f, fu, fv VecVirtual) {
+		by := func(k int) VecVirtual {
+			x := YMM()
+			VMULPD(number(k+2), u, x)
+			VADDPD(number(k+1), x, x)
+			VMULPD(x, u, x)
+			VADDPD(number(k), x, x)
+			return x
+		}
+		f, fu, fv = by(a), YMM(), by(a+4)
+		VMULPD(number(a+3), u, fu)
+		VADDPD(number(a+1), fu, fu)
+		return f, fu, fv
+	}
+	p := &bilinear{c, number, leastCol, perM, height, slopeE, slopeN, heights, cols, i}
+	p.sample(func() (f, fu, fv VecVirtual) { return quadratic(col0) }, func() (f, fu, fv VecVirtual) { return quadratic(row0) })
+}
+
+// bilinear is what ends a sampling loop: from columns, rows and their derivatives to
+// heights and slopes. number has the least column and what comes after it from leastCol on.
+type bilinear struct {
+	c                      *numbers
+	number                 func(k int) Op
+	leastCol, perM         int
+	height, slopeE, slopeN Register
+	heights, cols          Register
+	i                      Register
+}
+
+// sample takes what is at four places, goes to the next ones, and returns at the label done.
+func (p *bilinear) sample(cols, rows func() (f, fu, fv VecVirtual)) {
+	number, i := p.number, p.i
+	at := func(of Register) Mem { return Mem{Base: of, Index: i, Scale: 8} }
+	col, cu, cv := cols()
 	known := YMM()
 	within := func(x VecVirtual, least, most int, first bool) {
 		t := YMM()
@@ -87,7 +155,7 @@ func samplePatch(c *numbers) {
 		VCMPPD(Imm(0x12), number(most), x, t)
 		VANDPD(t, known, known)
 	}
-	within(col, leastCol, mostCol, true)
+	within(col, p.leastCol, p.leastCol+1, true)
 	// The cell, and where in it.
 	zero, most := XMM(), XMM()
 	VPXOR(zero, zero, zero)
@@ -103,12 +171,12 @@ func samplePatch(c *numbers) {
 		return w
 	}
 	last := GP64()
-	LEAQ(Mem{Base: cols, Disp: -2}, last)
+	LEAQ(Mem{Base: p.cols, Disp: -2}, last)
 	c0 := whole(col, last)
-	row, ru, rv := quadratic(row0)
-	within(row, leastRow, mostRow, false)
+	row, ru, rv := rows()
+	within(row, p.leastCol+2, p.leastCol+3, false)
 	w0 := whole(row, Load(Param("lastRow"), GP64()))
-	VMOVD(cols.(GPVirtual).As32(), most)
+	VMOVD(p.cols.(GPVirtual).As32(), most)
 	VPSHUFD(Imm(0), most, most)
 	VPMULLD(most, w0, w0)
 	VPADDD(c0, w0, w0)
@@ -129,10 +197,10 @@ func samplePatch(c *numbers) {
 		VCVTPS2PD(x, second)
 		return first, second
 	}
-	h00, dc := pairs(heights)
+	h00, dc := pairs(p.heights)
 	VSUBPD(h00, dc, dc)
 	below := GP64()
-	LEAQ(Mem{Base: heights, Index: cols, Scale: 4}, below)
+	LEAQ(Mem{Base: p.heights, Index: p.cols, Scale: 4}, below)
 	dr, twist := pairs(below)
 	VSUBPD(dr, twist, twist)
 	VSUBPD(dc, twist, twist)
@@ -150,23 +218,23 @@ func samplePatch(c *numbers) {
 	VANDPD(x, known, known)
 	VMULPD(twist, row, x)
 	VADDPD(x, dc, dc)
-	VMULPD(number(perM), dc, dc)
+	VMULPD(number(p.perM), dc, dc)
 	VMULPD(twist, col, x)
 	VADDPD(x, dr, dr)
-	VMULPD(number(perM), dr, dr)
+	VMULPD(number(p.perM), dr, dr)
 	for _, s := range []struct {
 		by, and VecVirtual
 		to      Register
-	}{{cu, ru, slopeE}, {cv, rv, slopeN}} {
+	}{{cu, ru, p.slopeE}, {cv, rv, p.slopeN}} {
 		VMULPD(s.by, dc, s.by)
 		VMULPD(s.and, dr, s.and)
 		VADDPD(s.and, s.by, s.by)
 		VANDPD(known, s.by, s.by)
 		VMOVUPD(s.by, at(s.to))
 	}
-	VMOVUPD(allLanes("unknown", 0x7ff8000000000001), x)
+	VMOVUPD(p.c.unknown, x)
 	VBLENDVPD(known, h, x, h)
-	VMOVUPD(h, at(height))
+	VMOVUPD(h, at(p.height))
 	ADDQ(Imm(4), i)
 	JMP(LabelRef("next"))
 	Label("done")
