@@ -35,6 +35,9 @@ func printForecast(w io.Writer, f *forecast.Forecast) error {
 		by = fmt.Sprintf("the median of %d runs, seed %d", f.Runs, *f.Seed)
 	}
 	fmt.Fprintf(&b, "predicted 95 %% radius, %s: median %.1f m, worst %.1f m at %.0f m; beyond the limit on %.1f %% of the way\n", by, f.MedianM, f.WorstM, f.WorstAtM, 100*f.Beyond)
+	if f.Seed == nil {
+		b.WriteString("(no filter does better than this bound, and one in doubt of its place does worse: --runs says by how much)\n")
+	}
 	fmt.Fprintf(&b, "protection radius at a risk of %g: beyond the limit on %.1f %% of the way\n", f.Risk, 100*f.Unprotected)
 	printAlike(&b, f)
 	printSamples(&b, f)

@@ -50,7 +50,7 @@ func printScore(w io.Writer, run *sweep.Outcome) error {
 			line("anees", "%.2f (2 is exact; 95 %% of independent samples in %.2f to %.2f)", *f.ANEES, *f.ANEESLow, *f.ANEESHigh)
 		}
 		if s.AlongRMSEM != nil {
-			line("along", "rms %.2f m (mean %+.2f m, forward), across rms %.2f m (mean %+.2f m, right)", *s.AlongRMSEM, *s.AlongMeanM, *s.AcrossRMSEM, *s.AcrossMeanM)
+			line("along", "rms %.2f m (mean %+.2f m, forward positive), across rms %.2f m (mean %+.2f m, right positive)", *s.AlongRMSEM, *s.AlongMeanM, *s.AcrossRMSEM, *s.AcrossMeanM)
 		}
 		if s.CRPSM != nil && s.LogScore != nil {
 			line("proper", "CRPS %.2f m, log score %.2f nats (smaller is better); worth %.0f independent errors", *s.CRPSM, *s.LogScore, *s.Independent)

@@ -139,7 +139,11 @@ func (f *findings) nuisance(path string, n Nuisance, d Sensor, s *Suite) {
 		}
 	}
 	f.within(path+".mean", n.Mean, -k.mostMean, k.mostMean)
-	f.within(path+".sigma", n.Sigma, k.leastSigma, k.mostSigma)
+	if n.Sigma == 0 {
+		f.add(path+".sigma", "%s needs a sigma, what is known of it at the start: a number from %v to %v", n.Name, k.leastSigma, k.mostSigma)
+	} else {
+		f.within(path+".sigma", n.Sigma, k.leastSigma, k.mostSigma)
+	}
 	f.within(path+".drift_per_sqrt_s", n.DriftPerSqrtS, 0, k.mostDrift)
 	if n.DriftPerSqrtS == 0 && !k.steady {
 		f.add(path+".drift_per_sqrt_s", "%s needs a drift above 0: what never changes is known too well in the end", n.Name)

@@ -112,7 +112,7 @@ func (m *Motion) roadStep(s *filter.Step, b body, g ground, frame geo.Frame, pos
 		return g.covered
 	}
 	s.Add[0] = b.forward
-	s.Q[0] += b.forwardVar + m.Suite.Vehicle.mapVar(b.forward, m.Bend.turned(b.forward, b.turn, b.turnVar))
+	s.Q[0] += b.forwardVar + m.Suite.Vehicle.MapVar(b.forward, m.Bend.turned(b.forward, b.turn, b.turnVar))
 	if scale >= 0 && b.scaled != 0 {
 		s.SetF(0, scale, b.scaled)
 	}
@@ -143,10 +143,10 @@ func beside(s *filter.Step, o float64, h int) {
 	}
 }
 
-// mapVar is the variance with which a way driven differs from the way on the
+// MapVar is the variance with which a way driven differs from the way on the
 // map, m²: by what the map's error stretches it, and by what a driver cuts off
 // or goes out of the way at corners, in proportion to the angle turned.
-func (v Vehicle) mapVar(forward, turned float64) float64 {
+func (v Vehicle) MapVar(forward, turned float64) float64 {
 	stretch := float64(v.StretchMPerSqrtM * v.StretchMPerSqrtM * math.Abs(forward))
 	return stretch + float64(v.CornerSigmaM*v.CornerSigmaM*turned)/(math.Pi/2)
 }

@@ -166,7 +166,7 @@ func TestParseSuiteErrors(t *testing.T) {
 		{"scale without a distance", "sensors:\n- name: a\n  kind: heading\n  nuisances:\n  - {name: odometer_scale, sigma: 0.1}\n", []string{"x.yaml:5:", "name", "depends on odometer_scale", "travel or body_displacement"}},
 		{"offset without drift", "sensors:\n- name: a\n  kind: clearance\n  nuisances:\n  - {name: altimeter_offset_m, sigma: 1}\n", []string{"x.yaml:5:", "drift_per_sqrt_s", "above 0"}},
 		{"offset with a negative drift", "sensors:\n- name: a\n  kind: clearance\n  nuisances:\n  - {name: altimeter_offset_m, sigma: 1, drift_per_sqrt_s: -1}\n", []string{"x.yaml:5:", "drift_per_sqrt_s", "from 0"}},
-		{"offset without sigma", "sensors:\n- name: a\n  kind: barometer\n  nuisances:\n  - {name: barometer_offset_m, drift_per_sqrt_s: 1}\n", []string{"x.yaml:", "sigma", "0 must be"}},
+		{"offset without sigma", "sensors:\n- name: a\n  kind: barometer\n  nuisances:\n  - {name: barometer_offset_m, drift_per_sqrt_s: 1}\n", []string{"x.yaml:", "sigma", "needs a sigma"}},
 		{"tide of infinite sigma", "sensors:\n- name: a\n  kind: sounding\n  nuisances:\n  - {name: tide_m, sigma: .inf, drift_per_sqrt_s: 0.01}\n", []string{"x.yaml:5:", "sigma", "Inf"}},
 		{"drift that is no number", "sensors:\n- name: a\n  kind: sounding\n  nuisances:\n  - {name: tide_m, sigma: 1, drift_per_sqrt_s: .nan}\n", []string{"x.yaml:5:", "drift_per_sqrt_s", "NaN"}},
 		{"one nuisance at two sensors", "sensors:\n- name: a\n  kind: sounding\n  nuisances:\n  - {name: tide_m, sigma: 1, drift_per_sqrt_s: 0.01}\n- name: b\n  kind: sounding\n  nuisances:\n  - {name: tide_m, sigma: 1, drift_per_sqrt_s: 0.01}\n", []string{"x.yaml:9:", "already", "\"a\""}},

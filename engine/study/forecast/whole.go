@@ -16,9 +16,10 @@ type Spot struct {
 	Chart int32 // on roads; -1 on a plane
 	At    geo.LonLat
 	// RMSM is the root of the mean squared error that the stretch alone leaves of the
-	// place (on roads of the place along the road), nothing being known before: that
-	// of the inverse of the Fisher information of its measurements. +Inf where they
-	// tell nothing.
+	// place (on roads of the place along the road, at the stretch's end), nothing being
+	// known before: that of the inverse of the Fisher information of its measurements,
+	// on roads less what is lost since by how the way driven differs from that on the map
+	// (sensor.Vehicle.MapVar). +Inf where they tell nothing.
 	RMSM float64
 	// Ambiguity is the part of the other spots, farther than the limit away, in the
 	// mixture over all spots, as likely beforehand as one another, if along the
@@ -150,7 +151,8 @@ func Heights(space filter.PlaneSpace, suite *sensor.Suite, points []geo.Point, o
 
 // Roads looks at the directed edges of a road map, each with as many metres on from
 // its beginning as the stretch has, straight on at junctions: what its bends and the
-// turns at its end tell, once each 5 m (sensor.RoadAlignment).
+// turns at its end tell, once each 5 m (sensor.RoadAlignment). Its information J, of the
+// place where the vehicle is, becomes 1/(1/J + v) where the way gains the variance v.
 func Roads(space filter.LineSpace, suite *sensor.Suite, o WholeOptions) ([]Spot, error) {
 	if o.SpeedMPS == 0 {
 		o.SpeedMPS = 10 // the comparison with the road is by distance
@@ -183,7 +185,7 @@ func Roads(space filter.LineSpace, suite *sensor.Suite, o WholeOptions) ([]Spot,
 		s := &out[i]
 		s.Chart = int32(i)
 		chart, along := s.Chart, 0.0
-		information := 0.0
+		information, ended := 0.0, false
 		for k := range profileSteps {
 			q := p.on(chart, along)
 			if k == 0 {
@@ -191,7 +193,11 @@ func Roads(space filter.LineSpace, suite *sensor.Suite, o WholeOptions) ([]Spot,
 			}
 			unwrapped := q.heading
 			if k > 0 {
-				unwrapped = s.profile[k-1] + geo.WrapPi(q.heading-s.profile[k-1])
+				turned := geo.WrapPi(q.heading - s.profile[k-1])
+				unwrapped = s.profile[k-1] + turned
+				if !ended {
+					information /= 1 + information*p.Suite.Vehicle.MapVar(stepM, math.Abs(turned))
+				}
 			}
 			s.profile = append(s.profile, unwrapped)
 			x := make([]float64, len(p.qs))
@@ -204,7 +210,7 @@ func Roads(space filter.LineSpace, suite *sensor.Suite, o WholeOptions) ([]Spot,
 				along -= topology.LengthM[chart]
 				next, jump, ok := p.straightOn(topology, chart)
 				if !ok {
-					along = topology.LengthM[chart]
+					along, ended = topology.LengthM[chart], true
 					break
 				}
 				end := p.on(chart, topology.LengthM[chart])
