@@ -88,7 +88,7 @@ func (d *Data) knotSlope(i int32) float64 {
 }
 
 func packVar(meanSquare float64) uint16 {
-	v := math.Min(meanSquare+BaseHeadingSigmaRad*BaseHeadingSigmaRad, maxHeadingVar)
+	v := min(meanSquare+BaseHeadingSigmaRad*BaseHeadingSigmaRad, maxHeadingVar)
 	return uint16(math.Round(v / VarStep))
 }
 
@@ -132,7 +132,7 @@ func (w *spreader) meanSquare(s, heading, r float64) float64 {
 	}
 	sum := 0.0
 	for i := w.seg; i < len(w.h) && along[i] < hi; i++ {
-		l := math.Min(hi, along[i+1]) - math.Max(lo, along[i])
+		l := min(hi, along[i+1]) - max(lo, along[i])
 		if l > 0 {
 			sum += float64(l * square(w.h[i]-heading))
 		}
@@ -172,7 +172,7 @@ func (w *spreader) beyond(links *filter.Links, ahead bool, c int32, h, heading, 
 				i = b - 2 - n
 			}
 			g += geo.WrapPi(d.segmentHeading(i) - g)
-			l := math.Min(left, d.Along[i+1]-d.Along[i])
+			l := min(left, d.Along[i+1]-d.Along[i])
 			part += float64(l * square(g-heading))
 			left -= l
 		}

@@ -21,7 +21,7 @@ func Blend(b, other *Belief, share float64, space LineSpace, w *Workspace) {
 			if from == &b.Gaussians {
 				mv.index = int32(i)
 			}
-			mv.note(&g)
+			mv.note(g.mean[:])
 		}
 	}
 	add(&b.Gaussians, 1-share)

@@ -188,7 +188,7 @@ func (b *Belief) inject(space LineSpace, from *Gaussians, places []Nearest, keep
 		g.mass *= keep
 		w.out.push(b.Key[i], k, &g)
 		mv.index, mv.from[0] = int32(i), g.mean[0]
-		mv.note(&g)
+		mv.note(g.mean[:])
 	}
 	mv.index = -1
 	for i, key := range from.Key {

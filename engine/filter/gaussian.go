@@ -124,41 +124,84 @@ func (g *gaussian) absorb(k int, h *gaussian, angular uint) {
 	if w == 0 {
 		return
 	}
-	share := h.mass / w
+	p := k * (k + 1) / 2
+	absorb(g.mean[:k], g.cov[:p], h.mean[:k], h.cov[:p], h.mass/w, angular)
+	g.mass = w
+}
+
+// absorb is gaussian.absorb of an entry of other columns into entry i.
+func (c *Gaussians) absorb(i int, from *Gaussians, j, k int, angular uint) {
+	w := c.Mass[i] + from.Mass[j]
+	if w == 0 {
+		return
+	}
+	p := k * (k + 1) / 2
+	absorb(c.Mean[i*k:i*k+k], c.Cov[i*p:i*p+p], from.Mean[j*k:j*k+k], from.Cov[j*p:j*p+p], from.Mass[j]/w, angular)
+	c.Mass[i] = w
+}
+
+// absorb merges mean and covariance of what has a share of both into those of the other.
+func absorb(mean, cov, hMean, hCov []float64, share float64, angular uint) {
 	var d [MaxK]float64
-	for i := range k {
-		d[i] = h.mean[i] - g.mean[i]
+	for i, h := range hMean[:len(mean)] {
+		d[i] = h - mean[i]
 		if angular>>uint(i)&1 != 0 {
 			d[i] = geo.WrapPi(d[i])
 		}
-		g.mean[i] += float64(share * d[i])
+		mean[i] += float64(share * d[i])
 	}
 	cross := float64(share * (1 - share))
-	n := 0
-	for i := range k {
-		for j := 0; j <= i; j++ {
-			g.cov[n] += float64(share*(h.cov[n]-g.cov[n])) + float64(cross*float64(d[i]*d[j]))
-			n++
+	if len(mean) == 4 {
+		absorbFour((*[10]float64)(cov), (*[10]float64)(hCov), share, cross, d[0], d[1], d[2], d[3])
+		return
+	}
+	for i := range mean {
+		row, hRow := cov[:i+1], hCov[:i+1]
+		cov, hCov = cov[i+1:], hCov[i+1:]
+		for j, v := range row {
+			row[j] = v + (float64(share*(hRow[j]-v)) + float64(cross*float64(d[i]*d[j])))
 		}
 	}
-	g.mass = w
+}
+
+// absorbFour merges covariances over four quantities, whose means differ by a to e.
+func absorbFour(v, h *[10]float64, share, cross, a, b, d, e float64) {
+	v[0] += float64(share*(h[0]-v[0])) + float64(cross*float64(a*a))
+	v[1] += float64(share*(h[1]-v[1])) + float64(cross*float64(b*a))
+	v[2] += float64(share*(h[2]-v[2])) + float64(cross*float64(b*b))
+	v[3] += float64(share*(h[3]-v[3])) + float64(cross*float64(d*a))
+	v[4] += float64(share*(h[4]-v[4])) + float64(cross*float64(d*b))
+	v[5] += float64(share*(h[5]-v[5])) + float64(cross*float64(d*d))
+	v[6] += float64(share*(h[6]-v[6])) + float64(cross*float64(e*a))
+	v[7] += float64(share*(h[7]-v[7])) + float64(cross*float64(e*b))
+	v[8] += float64(share*(h[8]-v[8])) + float64(cross*float64(e*d))
+	v[9] += float64(share*(h[9]-v[9])) + float64(cross*float64(e*e))
 }
 
 // push appends a Gaussian to the columns.
 func (c *Gaussians) push(key uint64, k int, g *gaussian) {
-	c.Key = append(c.Key, key)
-	c.Mass = append(c.Mass, g.mass)
-	c.Mean = append(c.Mean, g.mean[:k]...)
-	c.Cov = append(c.Cov, g.cov[:k*(k+1)/2]...)
+	c.add(key, g.mass, g.mean[:k], g.cov[:k*(k+1)/2])
 }
 
 // pushFrom appends entry i of other columns.
 func (c *Gaussians) pushFrom(from *Gaussians, i, k int) {
 	p := k * (k + 1) / 2
-	c.Key = append(c.Key, from.Key[i])
-	c.Mass = append(c.Mass, from.Mass[i])
-	c.Mean = append(c.Mean, from.Mean[i*k:i*k+k]...)
-	c.Cov = append(c.Cov, from.Cov[i*p:i*p+p]...)
+	c.add(from.Key[i], from.Mass[i], from.Mean[i*k:i*k+k], from.Cov[i*p:i*p+p])
+}
+
+// add appends a Gaussian; four quantities, as vehicles on roads have most often, without
+// calls that copy.
+func (c *Gaussians) add(key uint64, mass float64, mean, cov []float64) {
+	c.Key = append(c.Key, key)
+	c.Mass = append(c.Mass, mass)
+	if len(mean) == 4 {
+		v := (*[10]float64)(cov)
+		c.Mean = append(c.Mean, mean[0], mean[1], mean[2], mean[3])
+		c.Cov = append(c.Cov, v[0], v[1], v[2], v[3], v[4], v[5], v[6], v[7], v[8], v[9])
+		return
+	}
+	c.Mean = append(c.Mean, mean...)
+	c.Cov = append(c.Cov, cov...)
 }
 
 // store overwrites mean and covariance of entry i.

@@ -26,7 +26,7 @@ func Relevel(b *Belief, space LineSpace, level int, w *Workspace) {
 		mv.index, mv.from[0] = int32(i), g.mean[0]
 		g.mean[0] = pos - float64((float64(c)+0.5)*h)
 		w.out.push(LineKey(chart, c), k, &g)
-		mv.note(&g)
+		mv.note(g.mean[:])
 	}
 	b.Level = level
 	into := w.intoFor(u, len(w.out.Key))

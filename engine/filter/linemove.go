@@ -10,11 +10,12 @@ import (
 // into the outermost piece, so that mass, mean and variance stay exact.
 const foldSigmas = 3.5
 
-// lineMove is the memory for moving Gaussians on lines: some that have moved, with what
-// they reach over, and where they are cut, in standard deviations, with the standard
-// normal there.
+// lineMove is the memory for moving Gaussians on lines: means and covariances of some that
+// have moved, with what they reach over, and where they are cut, in standard deviations,
+// with the standard normal there.
 type lineMove struct {
-	moved            []gaussian
+	mean, cov        []float64
+	wide             gaussian // one that is cut
 	reach            []extent
 	z, density, tail []float64
 	work             kernel.EdgeWork
@@ -35,23 +36,32 @@ const lineRun = 256
 // which they are cut are evaluated together.
 func (mv *mover) sendLines(b *Belief, w *Workspace, add []float64) {
 	k, lm := mv.k, &mv.line
-	if len(lm.moved) == 0 {
-		lm.moved, lm.reach = make([]gaussian, lineRun), make([]extent, lineRun)
-	}
+	p := k * (k + 1) / 2
+	lm.reach = resize(lm.reach, lineRun)
 	for from := 0; from < len(b.Key); from += lineRun {
 		to := min(from+lineRun, len(b.Key))
 		lm.z = lm.z[:0]
-		for i := from; i < to; i++ {
-			g := &lm.moved[i-from]
-			b.load(g, i, k)
-			mv.advance(g, w, b.Dim, i, add)
-			lm.cuts(&lm.reach[i-from], mv.lines, b.Key[i], g)
+		lm.mean, lm.cov = append(lm.mean[:0], b.Mean[from*k:to*k]...), append(lm.cov[:0], b.Cov[from*p:to*p]...)
+		for i := range to - from {
+			mean, cov := lm.mean[i*k:(i+1)*k], lm.cov[i*p:(i+1)*p]
+			mv.local(w, b.Dim, from+i)
+			advance(mean, cov, &mv.f, add, mv.step.Q)
+			lm.cuts(&lm.reach[i], mv.lines, b.Key[from+i], mean[0], cov[0])
 		}
 		lm.evaluate()
 		at := 0
 		for i := range to - from {
 			mv.index = int32(from + i)
-			at = mv.cut(&lm.reach[i], &lm.moved[i], at)
+			e, mean, cov, mass := &lm.reach[i], lm.mean[i*k:(i+1)*k], lm.cov[i*p:(i+1)*p], b.Mass[from+i]
+			if !e.whole {
+				lm.wide.mass = mass
+				copy(lm.wide.mean[:], mean)
+				copy(lm.wide.cov[:], cov)
+				at = mv.cut(e, &lm.wide, at)
+				continue
+			}
+			mv.from[0] = mean[0]
+			mv.place(e.chart, e.pos, mean, cov, mass, 0)
 		}
 	}
 }
@@ -62,16 +72,17 @@ func (mv *mover) sendLine(key uint64, g *gaussian) {
 	lm := &mv.line
 	lm.z = lm.z[:0]
 	var e extent
-	lm.cuts(&e, mv.lines, key, g)
+	lm.cuts(&e, mv.lines, key, g.mean[0], g.cov[0])
 	lm.evaluate()
 	mv.cut(&e, g, 0)
 }
 
-// cuts finds what a Gaussian of a cell reaches over, and appends where it is cut.
-func (lm *lineMove) cuts(e *extent, ln *Lines, key uint64, g *gaussian) {
+// cuts finds what a Gaussian of a cell, of a position in it and its variance, reaches over,
+// and appends where it is cut.
+func (lm *lineMove) cuts(e *extent, ln *Lines, key uint64, along, variance float64) {
 	chart, cell := LineCell(key)
 	h := ln.WidthM[chart]
-	e.chart, e.pos, e.sigma = chart, float64((float64(cell)+0.5)*h)+g.mean[0], math.Sqrt(g.cov[0])
+	e.chart, e.pos, e.sigma = chart, float64((float64(cell)+0.5)*h)+along, math.Sqrt(variance)
 	e.first, e.last = 0, 0
 	if e.whole = !(e.sigma > 0.5*h); e.whole {
 		return
@@ -91,14 +102,16 @@ func (lm *lineMove) evaluate() {
 // cut sends a Gaussian, in pieces if it is wide, of which the edges are from at on; it
 // returns where those of the next one are.
 func (mv *mover) cut(e *extent, g *gaussian, at int) int {
+	k := mv.k
+	p := k * (k + 1) / 2
 	if e.whole {
 		mv.from[0] = g.mean[0]
-		mv.place(e.chart, e.pos, g, g.mass, 0)
+		mv.place(e.chart, e.pos, g.mean[:k], g.cov[:p], g.mass, 0)
 		return at
 	}
 	lm := &mv.line
 	var whole cutting
-	whole.begin(g, mv.k, 0)
+	whole.begin(g, k, 0)
 	left := edge{z: math.Inf(-1)}
 	for j := e.first; j <= e.last; j++ {
 		right := edge{z: math.Inf(1)}
@@ -107,11 +120,12 @@ func (mv *mover) cut(e *extent, g *gaussian, at int) int {
 			at++
 		}
 		if c := between(left, right); c.share > 0 {
-			whole.piece(&mv.piece, mv.k, c)
+			piece := &mv.piece
+			whole.piece(piece, k, c)
 			// A folded tail may have its mean beyond its cell: it is at home
 			// where its mean is.
-			mv.from[0] = mv.piece.mean[0]
-			mv.place(e.chart, e.pos+float64(e.sigma*c.mean), &mv.piece, mv.piece.mass, 0)
+			mv.from[0] = piece.mean[0]
+			mv.place(e.chart, e.pos+float64(e.sigma*c.mean), piece.mean[:k], piece.cov[:p], piece.mass, 0)
 		}
 		left = right
 	}
@@ -122,8 +136,8 @@ func (mv *mover) cut(e *extent, g *gaussian, at int) int {
 const placeDepth = 64
 
 // place puts a Gaussian with the given mass at a position along a chart, or
-// beyond its ends. It uses g's own mass and position as scratch.
-func (mv *mover) place(chart int32, pos float64, g *gaussian, mass float64, depth int) {
+// beyond its ends. It uses the mean's position as scratch.
+func (mv *mover) place(chart int32, pos float64, mean, cov []float64, mass float64, depth int) {
 	ln := mv.lines
 	length := ln.LengthM[chart]
 	if pos >= 0 && pos < length || depth == placeDepth {
@@ -132,10 +146,9 @@ func (mv *mover) place(chart int32, pos float64, g *gaussian, mass float64, dept
 			return
 		}
 		cell := int32(min(max(pos/ln.WidthM[chart], 0), float64(ln.Cells[chart]-1)))
-		g.mass = mass
-		g.mean[0] = pos - float64((float64(cell)+0.5)*ln.WidthM[chart])
-		mv.out.push(LineKey(chart, cell), mv.k, g)
-		mv.note(g)
+		mean[0] = pos - float64((float64(cell)+0.5)*ln.WidthM[chart])
+		mv.out.add(LineKey(chart, cell), mass, mean, cov)
+		mv.note(mean)
 		return
 	}
 	links, beyond := &ln.Forward, pos-length
@@ -145,7 +158,7 @@ func (mv *mover) place(chart int32, pos float64, g *gaussian, mass float64, dept
 	to, weight := links.Of(chart)
 	if len(to) == 0 {
 		if mv.departed != nil {
-			mv.depart(chart, beyond, g, mass)
+			mv.depart(chart, beyond, mean, cov, mass)
 			return
 		}
 		mv.left += mass
@@ -160,13 +173,13 @@ func (mv *mover) place(chart int32, pos float64, g *gaussian, mass float64, dept
 		if pos < 0 {
 			p += ln.LengthM[next]
 		}
-		mv.place(next, p, g, float64(mass*weight[i]), depth+1)
+		mv.place(next, p, mean, cov, float64(mass*weight[i]), depth+1)
 	}
 }
 
 // depart keeps a Gaussian that has gone beyond an end of a chart that leads
 // nowhere: 0 for the start, 1 for the end, and how far along the line's direction.
-func (mv *mover) depart(chart int32, beyond float64, g *gaussian, mass float64) {
+func (mv *mover) depart(chart int32, beyond float64, mean, cov []float64, mass float64) {
 	if mass < Floor {
 		mv.pruned += mass
 		return
@@ -175,7 +188,6 @@ func (mv *mover) depart(chart int32, beyond float64, g *gaussian, mass float64) 
 	if beyond < 0 {
 		end = 0
 	}
-	own := *g
-	own.mass, own.mean[0] = mass, beyond
-	mv.departed.push(LineKey(chart, end), mv.k, &own)
+	mean[0] = beyond
+	mv.departed.add(LineKey(chart, end), mass, mean, cov)
 }

@@ -31,9 +31,6 @@ const mergeAngleRad = 0.25
 // merger sorts Gaussians by cell and merges those of one cell.
 type merger struct {
 	order, spare []int32
-	groups       [maxPerCell]gaussian
-	member       []int8
-	g            gaussian
 }
 
 // merge writes the Gaussians of src into dst (which it empties first), in
@@ -44,7 +41,6 @@ func (m *merger) merge(dst, src *Gaussians, k int, angular uint, most int, trace
 	n := len(src.Key)
 	dst.empty(n, k)
 	m.sort(src.Key)
-	groups, g := &m.groups, &m.g
 	for a := 0; a < n; {
 		key := src.Key[m.order[a]]
 		b := a + 1
@@ -63,29 +59,21 @@ func (m *merger) merge(dst, src *Gaussians, k int, angular uint, most int, trace
 		}
 		// Heavy ones first, so that they, not crumbs, found the groups.
 		heavyFirst(cell, src.Mass)
-		used := 0
-		member := m.member[:0]
+		first := len(dst.Key)
 		for _, i := range cell {
-			src.load(g, int(i), k)
-			best := nearest(groups, used, most, g, angular)
-			if best < 0 {
-				best = used
-				src.load(&groups[used], int(i), k)
-				used++
+			into := dst.nearest(first, most, src.Mean[int(i)*k:][:k], angular)
+			if into < 0 {
+				into = len(dst.Key)
+				dst.pushFrom(src, int(i), k)
 			} else {
-				groups[best].absorb(k, g, angular)
+				dst.absorb(into, src, int(i), k, angular)
 			}
-			member = append(member, int8(best))
-		}
-		m.member = member
-		if trace != nil {
-			for j, i := range cell {
-				trace[i] = int32(len(dst.Key)) + int32(member[j])
+			if trace != nil {
+				trace[i] = int32(into)
 			}
 		}
-		for i := range used {
-			wrap(groups[i].mean[:k], angular)
-			dst.push(key, k, &groups[i])
+		for i := first; i < len(dst.Key); i++ {
+			wrap(dst.Mean[i*k:i*k+k], angular)
 		}
 	}
 }
@@ -113,26 +101,28 @@ func wrap(mean []float64, angular uint) {
 	}
 }
 
-// nearest returns the group that g belongs to, or -1 if it founds one.
-func nearest(groups *[maxPerCell]gaussian, used, most int, g *gaussian, angular uint) int {
-	if used == 0 {
+// nearest returns which of the entries from first on a Gaussian belongs to, or -1 if it
+// founds a group.
+func (c *Gaussians) nearest(first, most int, mean []float64, angular uint) int {
+	if len(c.Key) == first {
 		return -1
 	}
 	if angular == 0 {
-		return 0
+		return first
 	}
+	k := len(mean)
 	best, least := -1, math.Inf(1)
-	for i := range used {
-		d := 0.0
+	for i := first; i < len(c.Key); i++ {
+		d, other := 0.0, c.Mean[i*k:i*k+k]
 		for left := angular; left != 0; left &= left - 1 {
 			q := bits.TrailingZeros(left)
-			d = max(d, math.Abs(geo.WrapPi(g.mean[q]-groups[i].mean[q])))
+			d = max(d, math.Abs(geo.WrapPi(mean[q]-other[q])))
 		}
 		if d < least {
 			best, least = i, d
 		}
 	}
-	if least > mergeAngleRad && used < most {
+	if least > mergeAngleRad && len(c.Key)-first < most {
 		return -1
 	}
 	return best

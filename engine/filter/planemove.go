@@ -132,7 +132,7 @@ func (mv *mover) home(col, row int32, g *gaussian) {
 	g.mean[0] -= float64(e * h)
 	g.mean[1] -= float64(n * h)
 	mv.out.push(CellKey(col+int32(e), row+int32(n)), mv.k, g)
-	mv.note(g)
+	mv.note(g.mean[:])
 }
 
 // A Gaussian wider than cutWidth of a cell is cut into a row of narrower ones, a

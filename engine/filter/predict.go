@@ -1,9 +1,6 @@
 package filter
 
-import (
-	"fmt"
-	"math"
-)
+import "fmt"
 
 // Floor is the mass below which a Gaussian or a lattice cell is dropped, and
 // counted as pruned. Over an hour of 10 Hz steps with a few hundred Gaussians
@@ -179,12 +176,17 @@ func (mv *mover) send(b *Belief, w *Workspace) bool {
 
 // advance moves g, which is Gaussian i, by the step.
 func (mv *mover) advance(g *gaussian, w *Workspace, dim, i int, add []float64) {
+	mv.local(w, dim, i)
+	g.advance(&mv.f, add, mv.step.Q)
+}
+
+// local makes the step that of Gaussian i, if it has its own.
+func (mv *mover) local(w *Workspace, dim, i int) {
 	if k := mv.k; mv.step.Local != nil {
 		copy(mv.stepAdd, w.add[i*dim:(i+1)*dim])
 		copy(mv.stepF, w.f[i*dim*k:(i+1)*dim*k])
 		mv.f.set(k, mv.stepF)
 	}
-	g.advance(&mv.f, add, mv.step.Q)
 }
 
 func resize[T any](s []T, n int) []T {
@@ -248,7 +250,9 @@ func (w *Workspace) locate(b *Belief, space Space, wants Wants) {
 		for i, key := range b.Key {
 			chart, cell := LineCell(key)
 			h := lines.WidthM[chart]
-			widest = math.Max(widest, h)
+			if h > widest {
+				widest = h
+			}
 			w.chart[i] = chart
 			w.along[i] = float64((float64(cell)+0.5)*h) + b.Mean[i*k]
 		}

@@ -129,13 +129,13 @@ func (mv *mover) follow(u *turn) {
 
 // note notes the piece that was put out last, whose first quantities were from
 // in its old cell.
-func (mv *mover) note(g *gaussian) {
+func (mv *mover) note(mean []float64) {
 	if !mv.taped {
 		return
 	}
 	mv.source = append(mv.source, mv.index)
 	for d := range mv.dim {
-		mv.offset = append(mv.offset, mv.from[d]-g.mean[d])
+		mv.offset = append(mv.offset, mv.from[d]-mean[d])
 	}
 }
 

@@ -30,40 +30,56 @@ func (b *Belief) conditionTempered(nw *noiseWork, w *Workspace) {
 	u.over, u.part = resize(u.over, (parts+1)*n), resize(u.part, (parts+1)*n)
 	for i := range n {
 		u.own[i] = rowOf(u.gain[i*k:(i+1)*k], t.Row[i*k:(i+1)*k], b.Cov[i*p:(i+1)*p])
-		for c := range parts {
-			noise := nw.noise(c, t.ExtraOf(i, c)).a
-			u.variance[2*c*n+i], u.variance[(2*c+1)*n+i] = u.own[i]+noise/nw.power, noise
+	}
+	own, flat := u.own[:n], t.Flat[:n]
+	for c := range parts {
+		variance, noise := u.variance[2*c*n:][:n], u.variance[(2*c+1)*n:][:n]
+		cov := nw.parts[c].Cov[0]
+		for i, v := range own {
+			own := cov + t.ExtraOf(i, c)
+			variance[i], noise[i] = v+own/nw.power, own
 		}
 	}
 	kernel.Logs(u.log, u.variance)
-	for i := range n {
-		most := nw.logFlat
-		for c := range parts {
-			r := t.Residual[i] - nw.parts[c].Mean
-			s := 2*c*n + i
-			log := -0.5 * (float64(float64(r*r)*(1/u.variance[s])) + u.log[s])
-			scale := float64((1-nw.power)*(nw.logZ+0.5*u.log[s+n])) - 0.5*nw.logBeta
-			u.over[c*n+i] = nw.logW[c] + (log-nw.logZ+scale)/nw.power
-			most = max(most, u.over[c*n+i])
+	most := u.most[:n]
+	fill(most, nw.logFlat)
+	for c := range parts {
+		variance, log, logNoise, over := u.variance[2*c*n:][:n], u.log[2*c*n:][:n], u.log[(2*c+1)*n:][:n], u.over[c*n:][:n]
+		mean, logW := nw.parts[c].Mean, nw.logW[c]
+		rest, half := 1-nw.power, 0.5*nw.logBeta
+		for i, r := range t.Residual[:n] {
+			r -= mean
+			l := -0.5 * (float64(float64(r*r)*(1/variance[i])) + log[i])
+			scale := float64(rest*(nw.logZ+0.5*logNoise[i])) - half
+			x := logW + (l-nw.logZ+scale)/nw.power
+			over[i] = x
+			if !(x <= most[i]) { // or no number, which is to be seen
+				most[i] = x
+			}
 		}
-		u.over[parts*n+i], u.most[i] = nw.logFlat, most
-		for c := range parts + 1 {
-			over := &u.over[c*n+i]
-			if flat := t.Flat[i]; flat == flat || math.IsInf(most, -1) {
-				*over = math.Inf(-1) // there are no shares
+	}
+	fill(u.over[parts*n:], nw.logFlat)
+	for c := range parts + 1 {
+		over := u.over[c*n:][:n]
+		for i, m := range most {
+			if f := flat[i]; f == f || m < -math.MaxFloat64 {
+				over[i] = math.Inf(-1) // there are no shares
 				continue
 			}
-			*over -= most
+			over[i] -= m
 		}
 	}
 	kernel.Exps(u.part, u.over)
-	for i := range n {
-		sum := 0.0
-		for c := range parts + 1 {
-			sum += u.part[c*n+i]
+	sum := u.sum[:n]
+	copy(sum, u.part)
+	for c := 1; c <= parts; c++ {
+		for i, x := range u.part[c*n:][:n] {
+			sum[i] += x
 		}
-		if u.sum[i] = sum; sum == 0 {
-			u.sum[i] = 1
+	}
+	for i, s := range sum {
+		if s == 0 {
+			sum[i] = 1
 		}
 	}
 	kernel.Logs(u.over[:n], u.sum)
@@ -97,6 +113,9 @@ func (b *Belief) conditionTempered(nw *noiseWork, w *Workspace) {
 
 // rowOf is gaussian.ofRows of one row, in columns.
 func rowOf(gain, row, cov []float64) (own float64) {
+	if len(gain) == 4 {
+		return rowOfFour((*[4]float64)(gain), (*[4]float64)(row), (*[10]float64)(cov))
+	}
 	for x := range gain {
 		s := 0.0
 		for y, v := range row {
@@ -112,8 +131,24 @@ func rowOf(gain, row, cov []float64) (own float64) {
 	return own
 }
 
+// rowOfFour is rowOf of four quantities: sums begin at 0, so that no product with 0
+// changes any.
+func rowOfFour(gain, row *[4]float64, c *[10]float64) float64 {
+	a, b, d, e := row[0], row[1], row[2], row[3]
+	g0 := 0 + float64(a*c[0]) + float64(b*c[1]) + float64(d*c[3]) + float64(e*c[6])
+	g1 := 0 + float64(a*c[1]) + float64(b*c[2]) + float64(d*c[4]) + float64(e*c[7])
+	g2 := 0 + float64(a*c[3]) + float64(b*c[4]) + float64(d*c[5]) + float64(e*c[8])
+	g3 := 0 + float64(a*c[6]) + float64(b*c[7]) + float64(d*c[8]) + float64(e*c[9])
+	gain[0], gain[1], gain[2], gain[3] = g0, g1, g2, g3
+	return 0 + float64(a*g0) + float64(b*g1) + float64(d*g2) + float64(e*g3)
+}
+
 // gainOne is gaussian.gainBy of one row, in columns.
 func gainOne(mean, cov, gain []float64, r, inv float64) {
+	if len(mean) == 4 {
+		gainFour((*[4]float64)(mean), (*[10]float64)(cov), (*[4]float64)(gain), r, inv)
+		return
+	}
 	n := 0
 	for x := range mean {
 		by := float64(gain[x] * inv)
@@ -123,4 +158,24 @@ func gainOne(mean, cov, gain []float64, r, inv float64) {
 			n++
 		}
 	}
+}
+
+// gainFour is gainOne of four quantities.
+func gainFour(mean *[4]float64, c *[10]float64, gain *[4]float64, r, inv float64) {
+	g0, g1, g2, g3 := gain[0], gain[1], gain[2], gain[3]
+	b0, b1, b2, b3 := float64(g0*inv), float64(g1*inv), float64(g2*inv), float64(g3*inv)
+	mean[0] += float64(b0 * r)
+	mean[1] += float64(b1 * r)
+	mean[2] += float64(b2 * r)
+	mean[3] += float64(b3 * r)
+	c[0] -= float64(b0 * g0)
+	c[1] -= float64(b1 * g0)
+	c[2] -= float64(b1 * g1)
+	c[3] -= float64(b2 * g0)
+	c[4] -= float64(b2 * g1)
+	c[5] -= float64(b2 * g2)
+	c[6] -= float64(b3 * g0)
+	c[7] -= float64(b3 * g1)
+	c[8] -= float64(b3 * g2)
+	c[9] -= float64(b3 * g3)
 }

@@ -79,8 +79,8 @@ func (l *alignment) Linearize(t *filter.Terms, at *filter.Columns, qs []filter.Q
 		t.Residual[i] = geo.WrapPi(at.Heading[i] - mean[i*k+l.heading])
 		t.Row[i*k] = -at.Curvature[i]
 		t.Row[i*k+l.heading] = 1
-		t.Wide[i] = math.Max(at.HeadingVar[i], minHeadingVar)
-		t.Extra[i] = math.Min(followVar, t.Wide[i])
+		t.Wide[i] = max(at.HeadingVar[i], minHeadingVar)
+		t.Extra[i] = min(followVar, t.Wide[i])
 	}
 }
 
@@ -138,6 +138,6 @@ func (l *crossTrack) Linearize(t *filter.Terms, at *filter.Columns, qs []filter.
 		t.Residual[i] = -(float64(l.d.E*tN) - float64(l.d.N*tE))
 		t.Row[i*k] = -at.Curvature[i] * (float64(l.d.E*tE) + float64(l.d.N*tN))
 		nCn := float64(tN*tN*l.cov[0]) - float64(2*tN*tE*l.cov[1]) + float64(tE*tE*l.cov[2])
-		t.Extra[i] = nCn + float64(math.Max(at.HeadingVar[i], minHeadingVar)*d2)
+		t.Extra[i] = nCn + float64(max(at.HeadingVar[i], minHeadingVar)*d2)
 	}
 }
