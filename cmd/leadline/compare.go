@@ -106,6 +106,9 @@ func printComparison(w io.Writer, c *compare.Comparison) error {
 		}
 		fmt.Fprintf(&b, "%-20s %6d %10.4g %10.4g %+10.4g  %-23s %6d %6d  %.4g in %s\n", f.Name, f.Drives, f.A, f.B, f.Difference, interval, f.Better, f.Worse, f.WorstB, f.WorstDrive)
 	}
+	if few := c.Few(); few != "" {
+		fmt.Fprintf(&b, "note: %s\n", few)
+	}
 	for _, p := range c.Pairs {
 		for _, s := range p.Stretches {
 			word := "better"

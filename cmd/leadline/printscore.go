@@ -6,6 +6,7 @@ import (
 	"io"
 	"math"
 	"strings"
+	"unicode/utf8"
 
 	"leadline/engine/study/score"
 	"leadline/engine/study/sweep"
@@ -47,7 +48,7 @@ func printScore(w io.Writer, run *sweep.Outcome) error {
 		line("radii hold", "50 %% radius %.1f %% of truths, 95 %% radius %.1f %%, 99 %% radius %.1f %%; beyond protection %d",
 			100**f.Coverage50, 100**f.Coverage95, 100**f.Coverage99, *f.BeyondProtection)
 		if f.ANEES != nil {
-			line("anees", "%.2f (2 is exact; 95 %% of independent samples in %.2f to %.2f)", *f.ANEES, *f.ANEESLow, *f.ANEESHigh)
+			line("anees", "%.2f (2 is exact; %s)", *f.ANEES, aneesBounds(s.Independent))
 		}
 		if s.AlongRMSEM != nil {
 			line("along", "rms %.2f m (mean %+.2f m, forward positive), across rms %.2f m (mean %+.2f m, right positive)", *s.AlongRMSEM, *s.AlongMeanM, *s.AcrossRMSEM, *s.AcrossMeanM)
@@ -56,8 +57,12 @@ func printScore(w io.Writer, run *sweep.Outcome) error {
 			line("proper", "CRPS %.2f m, log score %.2f nats (smaller is better); worth %.0f independent errors", *s.CRPSM, *s.LogScore, *s.Independent)
 		}
 		if x := s.Protection; x != nil && x.Share != nil {
-			line("protection", "truth outside in %d of %d posteriors, %d times: share %.2g, 95 %% in %.2g to %.2g; %.0e was asked for",
-				x.Beyond, x.Bounded, x.Episodes, *x.Share, *x.Low, *x.High, x.Risk)
+			within := "too few independent errors for an interval"
+			if x.Low != nil {
+				within = fmt.Sprintf("95 %% in %.2g to %.2g", *x.Low, *x.High)
+			}
+			line("protection", "truth outside in %d of %d posteriors, %d times: share %.2g, %s; %.0e was asked for",
+				x.Beyond, x.Bounded, x.Episodes, *x.Share, within, x.Risk)
 		}
 		if w := s.LongestWrong; w != nil {
 			line("wrong", "longest stretch located with the truth outside the 99 %% radius: %.1f s, %.0f m, from %.0f s after the start on", w.ForS, w.ForM, w.StartS)
@@ -80,9 +85,12 @@ func printScore(w io.Writer, run *sweep.Outcome) error {
 	} else if s.FiguresAll.RMSEM != nil {
 		line("error", "of the most probable place, never located: rms %.0f m over %d posteriors", *s.FiguresAll.RMSEM, s.FiguresAll.Scored)
 	} else if e := s.TruthElsewhen; e != nil {
-		line("error", "not known: none of the %d truths, of %.0f s to %.0f s after the drive's start, is of the time of a posterior. Are clocks or dates apart?", e.Truths, e.FromS, e.ToS)
+		line("error", "not known: %s", e)
 	} else {
 		line("error", "not known: the drive holds no truth for its posteriors")
+	}
+	if o := s.TruthOffMap; o != nil {
+		line("truth", "%s", o)
 	}
 	if h := s.HeldOutFixes; h != nil && h.RMSEM != nil {
 		line("fixes", "held out: rms %.2f m, 50 %% %.2f m, 95 %% %.2f m over %d, their own error (%.2f m an axis) in it; %.1f %% outside of what 95 %% should be in",
@@ -111,6 +119,15 @@ func printScore(w io.Writer, run *sweep.Outcome) error {
 	return err
 }
 
+// aneesBounds says where means of as many independent errors are.
+func aneesBounds(independent *float64) string {
+	if independent == nil || *independent < 2 {
+		return "too few independent errors for bounds"
+	}
+	low, high := score.ANEESBounds(int(*independent), 2, 0.95)
+	return fmt.Sprintf("95 %% of means of %d independent errors in %.2f to %.2f", int(*independent), low, high)
+}
+
 // printLookedBack prints what looking back gave.
 func printLookedBack(line func(label, format string, args ...any), l *score.LookedBack) {
 	for _, x := range []struct {
@@ -131,12 +148,16 @@ func printLookedBack(line func(label, format string, args ...any), l *score.Look
 // printSweep prints what the runs of a sweep come to.
 func printSweep(w io.Writer, s *sweep.Summary) error {
 	var b strings.Builder
+	wide := len("setting")
+	for i := range s.Rows {
+		wide = max(wide, utf8.RuneCountInString(s.Rows[i].Setting))
+	}
 	row := func(name, end string, p *sweep.Pooled) {
-		fmt.Fprintf(&b, "  %-40s %6d %12.1f %8s %8s %8s %9s %6d %6d%s\n", name, p.Drives, p.LogEvidence,
+		fmt.Fprintf(&b, "  %-*s %6d %14.1f %8s %8s %8s %9s %6d %6d%s\n", wide, name, p.Drives, p.LogEvidence,
 			figure(p.RMSEM, 1), figure(p.P95M, 1), figure(p.CRPSM, 1), figure(p.Coverage95, 100), p.Beyond, p.NeverLocated, end)
 	}
 	table := func(title string, of func(*sweep.Row) *sweep.Pooled) {
-		fmt.Fprintf(&b, "%s\n  %-40s %6s %12s %8s %8s %8s %9s %6s %6s\n", title, "setting", "drives", "evidence", "rmse m", "p95 m", "CRPS m", "in 95 %", "beyond", "never")
+		fmt.Fprintf(&b, "%s\n  %-*s %6s %14s %8s %8s %8s %9s %6s %6s\n", title, wide, "setting", "drives", "evidence nats", "rmse m", "p95 m", "CRPS m", "in 95 %", "beyond", "never")
 		for i := range s.Rows {
 			end := ""
 			if n := s.Rows[i].CutShort; n > 0 {

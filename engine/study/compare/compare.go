@@ -38,11 +38,13 @@ type Changed struct {
 	Drives int     `json:"drives"`
 	A      float64 `json:"a_mean"`
 	B      float64 `json:"b_mean"`
-	// Difference is the mean of B - A over drives, Low and High its 95 %
-	// bootstrap interval, drives being drawn; null with fewer than three.
+	// Difference is the mean of B - A over drives, Low and High its 95 % interval
+	// (score.MeanInterval), Interval how that was made; null and "" with fewer than
+	// three.
 	Difference float64  `json:"difference"`
 	Low        *float64 `json:"difference_low"`
 	High       *float64 `json:"difference_high"`
+	Interval   string   `json:"difference_interval"`
 	Better     int      `json:"better"` // drives in which B is
 	Worse      int      `json:"worse"`
 	WorstB     float64  `json:"b_worst"` // of any drive
@@ -64,9 +66,31 @@ type Pair struct {
 // Of different programs or machines: sums in another order differ by about this.
 const tolerance = 1e-6
 
-// resamples of the bootstrap: the ends of a 95 % interval are then good to a few
-// per cent of its width.
-const resamples = 2000
+// resamples of the bootstrap: of 8 drives 6 in a thousand means are beyond either end,
+// 60 of these, so that the ends are good to a few per cent of the interval's width.
+const resamples = 10_000
+
+// leastDrives is from how many drives on an interval is given: of two that of Student
+// is 25 times as wide as its standard error, and nothing shows whether they are normal.
+const leastDrives = 3
+
+// Few says what intervals of few drives are worth, "" where none is of few.
+func (c *Comparison) Few() string {
+	most, student := 0, 0
+	for _, f := range c.Figures {
+		most = max(most, f.Drives)
+		if f.Interval == score.ByStudent {
+			student = max(student, f.Drives)
+		}
+	}
+	switch {
+	case student > 0:
+		return fmt.Sprintf("intervals of up to %d drives are Student's, which hold 95 %% if the differences between drives are normal: so few do not show whether they are", student)
+	case most < leastDrives:
+		return fmt.Sprintf("fewer than %d drives are too few for an interval: a difference may be chance", leastDrives)
+	}
+	return ""
+}
 
 // Of compares results. Sides of one setting each are paired by drive, others by
 // setting and drive. It is an error if nothing can be paired.
@@ -202,15 +226,9 @@ func (c *Comparison) changed(f *Figure) (Changed, bool) {
 		return out, false
 	}
 	out.A, out.B, out.Difference = out.A/n, out.B/n, out.Difference/n
-	if len(diffs) >= 3 {
-		low, high := score.BootstrapInterval(rand.New(rand.NewPCG(1, 0)), len(diffs), resamples, 0.95, func(items []int) float64 {
-			sum := 0.0
-			for _, i := range items {
-				sum += diffs[i]
-			}
-			return sum / n
-		})
-		out.Low, out.High = &low, &high
+	if len(diffs) >= leastDrives {
+		low, high, how := score.MeanInterval(rand.New(rand.NewPCG(1, 0)), diffs, resamples, 0.95)
+		out.Low, out.High, out.Interval = &low, &high, how
 	}
 	return out, true
 }

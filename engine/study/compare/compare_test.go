@@ -79,9 +79,14 @@ func TestCompare(t *testing.T) {
 		t.Errorf("%+v", c)
 	}
 	f, ok := c.figure("p95_m")
-	// 4, 4, 3 and 2, 30, 3: differences -2, 26, 0.
-	if !ok || math.Abs(f.Difference-8) > 1e-12 || f.Better != 1 || f.Worse != 1 || f.WorstDrive != "worse" || f.WorstB != 30 || f.Low == nil || *f.Low != -2 || *f.High != 26 {
+	// 4, 4, 3 and 2, 30, 3: differences -2, 26, 0. Student's point of two degrees of
+	// freedom, 4.3027, is from tables.
+	half := 4.3027 * math.Sqrt(((10*10+18*18+8*8)/2.)/3)
+	if !ok || math.Abs(f.Difference-8) > 1e-12 || f.Better != 1 || f.Worse != 1 || f.WorstDrive != "worse" || f.WorstB != 30 || f.Low == nil || f.Interval != score.ByStudent || math.Abs(*f.Low-(8-half)) > 1e-3 || math.Abs(*f.High-(8+half)) > 1e-3 {
 		t.Errorf("%+v", f)
+	}
+	if !strings.Contains(c.Few(), "up to 3 drives are Student's") {
+		t.Errorf("of few drives: %q", c.Few())
 	}
 	if _, ok := c.figure("max_m"); ok {
 		t.Error("a figure that nobody has")
@@ -111,6 +116,9 @@ func TestDoubts(t *testing.T) {
 	c, err := Of(find(t, a), find(t, b))
 	if err != nil {
 		t.Fatal(err)
+	}
+	if !strings.Contains(c.Few(), "fewer than 3 drives") {
+		t.Errorf("of one drive: %q", c.Few())
 	}
 	notes := strings.Join(c.Notes, "\n")
 	for _, want := range []string{"different drive files", "different maps", "partial: interrupted", "nothing is claimed"} {

@@ -36,8 +36,12 @@ func (x *Run) details() (out []detail) {
 	add("log_score", s.LogScore, "mean logarithmic score, nats")
 	add("independent", s.Independent, "how many independent errors the scored ones are worth")
 	if p := s.Protection; p != nil && p.Share != nil {
+		within := "too few independent errors for an interval"
+		if p.Low != nil && p.High != nil {
+			within = fmt.Sprintf("between %s and %s in 95 %% of such drives", percent(*p.Low), percent(*p.High))
+		}
 		out = append(out, detail{"share", percent(*p.Share), fmt.Sprintf(
-			"of bounded protection radii that the truth was beyond, in %d episodes; between %s and %s in 95 %% of such drives; asked for is a risk of %g", p.Episodes, percent(*p.Low), percent(*p.High), p.Risk)})
+			"of bounded protection radii that the truth was beyond, in %d episodes; %s; asked for is a risk of %g", p.Episodes, within, p.Risk)})
 	}
 	if w := s.LongestWrong; w != nil {
 		out = append(out, detail{"longest_wrong", number(w.ForS) + " s", fmt.Sprintf("said located with the truth outside the 99 %% radius, from %s s on, over %s m", number(w.StartS), number(w.ForM))})

@@ -1,5 +1,7 @@
 package score
 
+import "fmt"
+
 // Details are what a score says beyond its figures, from the first located
 // posterior on.
 type Details struct {
@@ -41,6 +43,8 @@ type Details struct {
 	TruthNote *TruthNote `json:"truth"`
 	// TruthElsewhen is of truths of which none is of the time of a posterior.
 	TruthElsewhen *Elsewhen `json:"truth_elsewhen,omitempty"`
+	// TruthOffMap is of truths of which none is at a road of the map.
+	TruthOffMap *OffMap `json:"truth_off_map,omitempty"`
 	// HeldOutFixes compares satellite fixes with what was known without them.
 	HeldOutFixes *HeldOut `json:"held_out_fixes,omitempty"`
 	// LookedBack is of the drive as it is known once it is over, where that was
@@ -60,6 +64,29 @@ type Elsewhen struct {
 	ToS    float64 `json:"truths_to_s"`
 }
 
+// String says so, and what to look at.
+func (e *Elsewhen) String() string {
+	return fmt.Sprintf("none of the %d truths, of %.0f s to %.0f s after the drive's start, is of the time of a posterior. Are clocks or dates apart?", e.Truths, e.FromS, e.ToS)
+}
+
+// OffMap is how far a drive's truths are from a map's roads, if none that is compared
+// lies within 15 m of one.
+type OffMap struct {
+	Truths int `json:"truths_off_map"`
+	// NearestM is the way from the nearest of them to its nearest road, metres; of
+	// more than 1000 km, 1000 km.
+	NearestM float64 `json:"nearest_road_m"`
+}
+
+// String says so, and what to look at.
+func (o *OffMap) String() string {
+	far := fmt.Sprintf("%.0f m", o.NearestM)
+	if o.NearestM >= 10_000 {
+		far = fmt.Sprintf("%.0f km", o.NearestM/1000)
+	}
+	return fmt.Sprintf("all %d truths lie off the map, at least %s from its nearest road. Is it the map of that place, and are longitude and latitude in their order?", o.Truths, far)
+}
+
 // Stretch is a part of a drive.
 type Stretch struct {
 	StartS float64 `json:"start_s"` // after the drive's start
@@ -74,12 +101,19 @@ type Exceedance struct {
 	Episodes int `json:"episodes"` // of consecutive ones
 	// Share is beyond over bounded; Low and High hold its true value with 95 %
 	// (Clopper & Pearson, Biometrika 26, 1934), for as many trials as the errors
-	// are independent. Risk is the largest that was asked for.
-	Share *float64 `json:"share"`
-	Low   *float64 `json:"share_low"`
-	High  *float64 `json:"share_high"`
-	Risk  float64  `json:"risk"`
+	// are independent: Trials. They are null with fewer than leastTrials. Risk is the
+	// largest that was asked for.
+	Share  *float64 `json:"share"`
+	Low    *float64 `json:"share_low"`
+	High   *float64 `json:"share_high"`
+	Risk   float64  `json:"risk"`
+	Trials float64  `json:"trials"`
 }
+
+// leastTrials is how many independent errors an interval takes. Of a single trial that
+// of Clopper and Pearson is 0 to 0.975 or 0.025 to 1, whatever is true: it says what
+// was seen, and there is no second error to say whether that is chance.
+const leastTrials = 2
 
 // TruthNote says what a truth is worth.
 type TruthNote struct {

@@ -16,6 +16,7 @@ type one struct {
 	nees             float64
 	in50, in95, in99 bool
 	right            bool
+	onMap            bool // a road within rightMostM of the truth
 	beyond           bool
 }
 
@@ -39,7 +40,8 @@ func errorOf(p *summary.Posterior, truth Truth, roads func(geo.LonLat, float64) 
 	}
 	e.nees = nees(fromMeanM*sin, fromMeanM*cos, p.Cov, truth.SigmaM*truth.SigmaM)
 	if roads != nil {
-		e.right = right(p, roads(truth.At, rightMostM))
+		near := roads(truth.At, rightMostM)
+		e.right, e.onMap = right(p, near), len(near) > 0
 	}
 	return e, nil
 }

@@ -31,6 +31,16 @@ func BinomialInterval(k, n, p float64) (low, high float64) {
 	return low, high
 }
 
+// ShareInterval is BinomialInterval of a share of errors that are worth so many
+// independent ones; not ok if those are too few to say, fewer than two.
+func ShareInterval(share, independent, p float64) (low, high float64, ok bool) {
+	if independent < leastTrials {
+		return 0, 1, false
+	}
+	low, high = BinomialInterval(math.Min(share*independent, independent), independent, p)
+	return low, high, true
+}
+
 // mostLags bounds what IndependentOf costs.
 const mostLags = 20_000
 

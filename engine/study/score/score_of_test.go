@@ -90,7 +90,6 @@ func TestWorked(t *testing.T) {
 	}
 }
 
-// TestCoverageAndProtection uses errors well between the radii.
 // TestTruthElsewhen: truths of another hour are said to be that, and not that there
 // are none.
 func TestTruthElsewhen(t *testing.T) {
@@ -115,6 +114,44 @@ func TestTruthElsewhen(t *testing.T) {
 	}
 }
 
+// TestTruthOffMap: the road is at a distance that the truths come nearest to in the
+// middle, or so far that nothing is known but that. One truth at a road is enough.
+func TestTruthOffMap(t *testing.T) {
+	for _, c := range []struct {
+		eastM, roadM, want float64 // the truths' middle, the road's and how far it is; -1 for none
+		text               string
+	}{{100, 0, 96, " m from its"}, {-100, 0, 96, " m from its"}, {0, 50_000, 49_996, "at least 50 km"}, {0, 2e6, 1e6, "at least 1000 km"}, {3, 0, -1, ""}, {18, 0, -1, ""}} {
+		looked := 0
+		in := Input{StartNS: 1e9, Roads: func(p geo.LonLat, radiusM float64) []Road {
+			looked++
+			if m := math.Abs(frame.Forward(p).E - c.roadM); m <= radiusM {
+				return []Road{{Chart: 7, DistM: m}, {Chart: 8, DistM: m}}
+			}
+			return nil
+		}}
+		const n = 2001 // from 4 m one way to 4 m the other way
+		for s := range int64(n) {
+			in.Truth = append(in.Truth, Truth{TimeNS: s * 1e9, At: at(c.eastM+4-8*float64(s)/(n-1), 0)})
+			if s < 20 || s == n-1 {
+				in.Posteriors = append(in.Posteriors, posterior(s, summary.Located))
+			}
+		}
+		s, err := Of(in)
+		if err != nil {
+			t.Fatal(err)
+		}
+		switch got := s.TruthOffMap; {
+		case c.want < 0 && got != nil:
+			t.Errorf("%+v: %+v", c, got)
+		case c.want >= 0 && (got == nil || got.Truths != n || got.NearestM > c.want+1e-3 || got.NearestM < 0.99*c.want || !strings.Contains(got.String(), c.text)):
+			t.Errorf("%+v: %+v", c, got)
+		case looked > 200: // 21 posteriors, some doublings, and one each hundredth of the way nearer
+			t.Errorf("%+v: %d times looked up", c, looked)
+		}
+	}
+}
+
+// TestCoverageAndProtection uses errors well between the radii.
 func TestCoverageAndProtection(t *testing.T) {
 	in := Input{}
 	for i, e := range []float64{0.5, 1.5, 2.5, 3.5, 4.5, 5.5} {
@@ -134,6 +171,25 @@ func TestCoverageAndProtection(t *testing.T) {
 	near(t, "coverage99", s.Figures.Coverage99, 3.0/6, 1e-12)
 	if *s.Figures.BeyondProtection != 1 {
 		t.Errorf("%d beyond protection, want 1: 4.5 m; 5.5 m has none", *s.Figures.BeyondProtection)
+	}
+}
+
+// TestTooFewToSay: two hundred errors that rise steadily are worth few, and the first
+// ten of them less than one: of their protection radii no interval is given.
+func TestTooFewToSay(t *testing.T) {
+	in := Input{}
+	for i := range int64(200) {
+		p := posterior(i, summary.Located)
+		p.Protection.Bounded = i < 10
+		in.Posteriors = append(in.Posteriors, p)
+		in.Truth = append(in.Truth, Truth{TimeNS: i * 1e9, At: at(0, 3.5+0.1*float64(i))})
+	}
+	s, err := Of(in)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if p := s.Protection; p.Beyond == 0 || p.Share == nil || p.Low != nil || p.High != nil || !(p.Trials > 0 && p.Trials < leastTrials) {
+		t.Errorf("%+v", p)
 	}
 }
 

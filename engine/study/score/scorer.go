@@ -18,6 +18,7 @@ type Scorer struct {
 	lastNS, firstNS int64 // of all, and the first located
 	n               int
 	located         bool
+	onMap           bool // any truth
 	all, counted    sums
 	inOrder         series // those that count
 	details         details
@@ -72,6 +73,7 @@ func (s *Scorer) Add(p *summary.Posterior) (truth Truth, errM float64, ok bool, 
 		return Truth{}, 0, false, err
 	}
 	s.all.add(e)
+	s.onMap = s.onMap || e.onMap
 	if s.located {
 		s.counted.add(e)
 		s.inOrder.add(e.errM)
@@ -122,6 +124,13 @@ func (s *Scorer) Score(startNS int64, hash string) (*Score, error) {
 	if list := s.truths.list; len(list) > 0 && out.FiguresAll.Scored == 0 {
 		after := func(t Truth) float64 { return float64(t.TimeNS-startNS) / 1e9 }
 		out.TruthElsewhen = &Elsewhen{len(list), after(list[0]), after(list[len(list)-1])}
+	}
+	if s.roads != nil && !s.onMap && out.FiguresAll.Scored > 0 {
+		m, err := s.truths.fromRoads(s.roads)
+		if err != nil {
+			return nil, err
+		}
+		out.TruthOffMap = &OffMap{len(s.truths.list), m}
 	}
 	return &out, nil
 }
@@ -227,8 +236,10 @@ func (d *details) figures(counted *sums, independent float64, startNS int64) Det
 	if d.bounded > 0 {
 		share := float64(d.beyond) / float64(d.bounded)
 		trials := independent * float64(d.bounded) / n
-		low, high := BinomialInterval(share*trials, trials, 0.95)
-		x.Share, x.Low, x.High = &share, &low, &high
+		x.Share, x.Trials = &share, trials
+		if low, high, ok := ShareInterval(share, trials, 0.95); ok {
+			x.Low, x.High = &low, &high
+		}
 	}
 	out.Protection = x
 	out.LongestWrong = d.wrong.longest(startNS)

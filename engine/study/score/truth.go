@@ -94,6 +94,38 @@ func (t *truths) twofold() (n int, err error) {
 	return n, nil
 }
 
+// farthestM is how far from a truth roads are looked for: there a map's frame, a
+// transverse Mercator projection, is off by L²/2R², a hundredth.
+const farthestM = 1e6
+
+// fromRoads is how far all truths are from the map's roads at least, up to farthestM.
+// It is at most a hundredth less than what the nearest one is: what is known of a truth
+// bounds those after it, so that few of many are looked up.
+func (t *truths) fromRoads(roads func(geo.LonLat, float64) []Road) (float64, error) {
+	nearestM := farthestM // that was found
+	for radiusM := float64(rightMostM); radiusM < farthestM; radiusM *= 2 {
+		if near := roads(t.list[0].At, radiusM); len(near) > 0 {
+			nearestM = near[0].DistM
+			break
+		}
+	}
+	leastM, thisM := nearestM, nearestM // bounds: of all, and of the truth under way
+	for i := 1; i < len(t.list); i++ {
+		m, _, err := geo.WGS84.Distance(t.list[i-1].At, t.list[i].At)
+		if err != nil {
+			return 0, err
+		}
+		if thisM -= m; thisM < 0.99*nearestM {
+			thisM = nearestM
+			if near := roads(t.list[i].At, nearestM); len(near) > 0 {
+				nearestM, thisM = near[0].DistM, near[0].DistM
+			}
+		}
+		leastM = math.Min(leastM, thisM)
+	}
+	return leastM, nil
+}
+
 // motion is how the truth moves around a time of its own.
 func (t *truths) motion(ns int64, sigmaM float64) motion {
 	from, ok := Interpolate(t.list, ns-courseS*1e9)
