@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"io"
+	"path/filepath"
 	"runtime"
 	"strconv"
 	"sync"
@@ -12,6 +13,7 @@ import (
 	"leadline/engine/geo"
 	"leadline/engine/sensor"
 	"leadline/engine/study/diagnose"
+	"leadline/engine/study/results"
 	"leadline/engine/study/sweep"
 )
 
@@ -98,6 +100,18 @@ func (o *replayOptions) study(ctx context.Context, errs io.Writer, out *studies,
 		}
 	}
 	return nil
+}
+
+// keep writes beside a run's results what was found; "" keeps nothing.
+func (s *studies) keep(dir string) error {
+	if dir == "" {
+		return nil
+	}
+	f := results.Findings{Suspect: s.Findings.Reasons}
+	if s.Diagnosis != nil {
+		f.Verdict = s.Diagnosis.Verdict
+	}
+	return results.WriteJSON(filepath.Join(dir, results.FindingsFile), f)
 }
 
 // grids is the grid of a height map that is in a projection.

@@ -295,6 +295,9 @@ func (o *replayOptions) say(ctx context.Context, c *cobra.Command, m *mapFile, r
 		if err := o.study(ctx, c.ErrOrStderr(), why, m, run.Kept, run.Drive.Path); err != nil {
 			return err
 		}
+		if err := why.keep(run.Dir); err != nil {
+			return err
+		}
 	}
 	if o.asJSON {
 		return printJSONLine(out, struct {

@@ -58,11 +58,19 @@ type chart struct {
 	*plot.Plot
 	key     plot.Legend
 	entries int
+	textW   vg.Length // of the longest entry
 }
 
 func (c *chart) name(name string, of ...plot.Thumbnailer) {
 	c.key.Add(name, of...)
 	c.entries++
+	c.textW = max(c.textW, c.key.TextStyle.Width(name))
+}
+
+// keyW is the room that the key takes beside the chart. A reader's font may be a
+// seventh wider than the one that is measured here, which on the page it replaces.
+func (c *chart) keyW() vg.Length {
+	return c.key.ThumbnailWidth + c.textW*8/7 + vg.Points(24)
 }
 
 // picture is a chart with its size.
@@ -75,16 +83,13 @@ type picture struct {
 	note string
 }
 
-const (
-	keyW = 2.75 * vg.Inch
-	keyH = 13 // points a line
-)
+const keyH = 13 // points a line
 
 func (p *picture) on(c draw.Canvas) {
 	p.key.Left, p.key.Top = true, true
 	if p.wide {
-		p.Draw(draw.Crop(c, 0, -keyW, 0, -vg.Points(4)))
-		p.key.Draw(draw.Crop(c, p.w-keyW+vg.Points(10), 0, 0, -vg.Points(6)))
+		p.Draw(draw.Crop(c, 0, -p.keyW(), 0, -vg.Points(4)))
+		p.key.Draw(draw.Crop(c, p.w-p.keyW()+vg.Points(10), 0, 0, -vg.Points(6)))
 		return
 	}
 	room := vg.Points(keyH*float64(p.entries) + 6)
@@ -109,8 +114,8 @@ func (p *picture) write(w io.Writer, format, title string) error {
 	style := p.Title
 	defer func() { p.Title = style }()
 	p.Title.Text = title
-	if width := p.Title.TextStyle.Width(title); width > p.w-keyW { // a drive's name may be long
-		p.Title.TextStyle.Font.Size *= (p.w - keyW) / width
+	if width := p.Title.TextStyle.Width(title); width > p.w-p.keyW() { // a drive's name may be long
+		p.Title.TextStyle.Font.Size *= (p.w - p.keyW()) / width
 	}
 	if format == "svg" {
 		c := vgsvg.New(p.w, p.h)

@@ -5,6 +5,7 @@ import (
 	_ "embed"
 	"encoding/json"
 	"fmt"
+	"html"
 	"html/template"
 	"io"
 	"math"
@@ -53,7 +54,14 @@ var page = template.Must(template.New("page").Funcs(template.FuncMap{
 		return fmt.Sprintf("%+.3g to %+.3g", *low, *high)
 	},
 	"changes": changes,
+	"breaks":  breaks,
 }).Parse(pageText))
+
+// breaks lets a long name break after its signs, and not within a word.
+func breaks(s string) template.HTML {
+	text := strings.NewReplacer("_", "_<wbr>", "=", "=<wbr>", "/", "/<wbr>", ",", ",<wbr>", ":", ":<wbr>").Replace(html.EscapeString(s))
+	return template.HTML(text) //nolint:gosec // escaped
+}
 
 func percent(v float64) string { return fmt.Sprintf("%.3g %%", 100*v) }
 
@@ -82,14 +90,15 @@ func (r *Report) WriteHTML(w io.Writer) error {
 	for i, x := range r.Runs {
 		s := shown{Run: x, ID: fmt.Sprintf("run-%d", i+1), Name: x.name(r), UsableShare: "–"}
 		if n := x.series.n; n > 0 {
-			s.UsableShare = percent(float64(x.series.class[Usable]) / float64(n))
+			checked := x.series.checked()
+			s.UsableShare = percent(float64(x.series.class[Usable])/float64(n)) + checked
 			var parts []string
 			for c, k := range x.series.class {
 				if k > 0 {
 					parts = append(parts, fmt.Sprintf("%s %s", Class(c), percent(float64(k)/float64(n))))
 				}
 			}
-			s.Classes = "Of its posteriors: " + strings.Join(parts, ", ") + "."
+			s.Classes = "Of its posteriors" + checked + ": " + strings.Join(parts, ", ") + "."
 		}
 		if x.Drawn {
 			for _, p := range r.pictures(x) {

@@ -123,12 +123,12 @@ func places(p *chart, g *track.Ground, box geo.Box, km func(geo.Point) plotter.X
 // mapPicture gives the map its shape.
 func mapPicture(p *chart, wide, high float64) *picture {
 	const axis = 0.6 * vg.Inch
-	w := pageW - keyW - axis
+	w := pageW - p.keyW() - axis
 	h := w * vg.Length(high/wide)
 	if most := 6.2 * vg.Inch; h > most {
 		w, h = w*most/h, most
 	}
-	return &picture{file: "map", alt: "map with truth, estimate and weak stretches", chart: p, w: w + axis + keyW, h: h + axis, wide: true}
+	return &picture{file: "map", alt: "map with truth, estimate and weak stretches", chart: p, w: w + axis + p.keyW(), h: h + axis, wide: true}
 }
 
 // around widens a box so that it has a shape that can be looked at.

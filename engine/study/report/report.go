@@ -13,7 +13,6 @@ import (
 	"leadline/engine/study/compare"
 	"leadline/engine/study/results"
 	"leadline/engine/study/score"
-	"leadline/engine/study/sweep"
 	"leadline/engine/study/track"
 )
 
@@ -45,6 +44,8 @@ type Run struct {
 	Result string       `json:"result"` // the folder it was found under
 	Run    results.Run  `json:"run"`
 	Score  *score.Score `json:"score"`
+	// Findings are what replay found suspicious, null where it did not look.
+	Findings *results.Findings `json:"findings"`
 	// Posteriors count the rows of each class, see Class.
 	Posteriors map[string]int `json:"posteriors_by_class"`
 	// Weak are the weakest stretches, the worst class first and then the longest;
@@ -129,6 +130,13 @@ func (x *Run) read(runs int) error {
 		if x.later, err = x.table(results.SmoothedFile, most); err != nil {
 			return err
 		}
+	}
+	var f results.Findings
+	switch err := results.ReadJSON(filepath.Join(x.dir, results.FindingsFile), &f); {
+	case err == nil:
+		x.Findings = &f
+	case !errors.Is(err, fs.ErrNotExist):
+		return err
 	}
 	x.Posteriors = x.series.counts()
 	x.Weak, x.WeakFound = x.series.weak.worst()
@@ -228,53 +236,6 @@ func (r *Report) settings() {
 				mean := s.of / s.n
 				*into = &mean
 			}
-		}
-	}
-}
-
-// caution gathers what makes the results doubtful, and finds the ground.
-func (r *Report) caution(in Input) {
-	say := func(format string, args ...any) { r.Cautions = append(r.Cautions, fmt.Sprintf(format, args...)) }
-	programs, undrawn := map[string]bool{}, 0
-	for _, x := range r.Runs {
-		name := x.name(r)
-		programs[x.Run.Version+x.Run.Program+x.Run.Architecture] = true
-		if !x.Drawn {
-			undrawn++
-		}
-		if x.Run.Partial {
-			say("%s is partial: %s.", name, x.Run.Stopped)
-		}
-		if n := x.Run.Refused; n > 0 {
-			say("%s: %d of %d measurements were refused, first %s.", name, n, n+x.Run.Accepted, x.Run.FirstRefusal)
-		}
-		switch t := x.Score.TruthNote; {
-		case x.Score.Figures.Scored == 0 && x.Score.FiguresAll.Scored == 0:
-			say("%s has no truth to compare with: of it only radii are shown, which are the model's own.", name)
-		case t != nil && len(t.Below) > 0:
-			say("%s: the truth's own error is %.2g m an axis; nothing is claimed by %v.", name, t.SigmaM, t.Below)
-		}
-		if t := x.Score.TruthNote; t != nil && t.Twofold > 0 {
-			say("%s: the truth says two places at one time in %d cases, of which the first of the file counts.", name, t.Twofold)
-		}
-		key := x.Run.Map + "\x00" + x.Run.MapFingerprint
-		if _, seen := r.grounds[key]; in.Ground != nil && x.Drawn && !seen {
-			g, err := in.Ground(x.Run.Map, x.Run.MapFingerprint)
-			if r.grounds[key] = g; err != nil {
-				say("Tracks are drawn without the map under them: %v.", err)
-			}
-		}
-	}
-	if len(programs) > 1 {
-		say("The runs were made by %d different programs or kinds of machine.", len(programs))
-	}
-	if undrawn > 0 {
-		say("%d of %d runs, those with the smallest errors, are in the tables alone.", undrawn, len(r.Runs))
-	}
-	for _, dir := range in.Dirs {
-		var s sweep.Summary
-		if results.ReadJSON(filepath.Join(dir, sweep.SummaryFile), &s) == nil && s.SettingsTried > 1 {
-			say("%d settings were tried in %s: the best of many looks better than it is; go by drives that were held out.", s.SettingsTried, dir)
 		}
 	}
 }

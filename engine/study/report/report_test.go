@@ -46,14 +46,14 @@ func left(t *testing.T, dir, setting, folder string, change func(*results.Run, *
 		}
 		fmt.Fprintf(&table, "2030-05-01T12:%02d:%02dZ,%s,%.6f,45,%.6f,45.0001,%g,8,%s\n", s/60, s%60, status, -30+1e-4*float64(s), -30+1e-4*float64(s), float64(s)/30, radius)
 	}
-	half, after, n := 10.0, 60.0, 3
+	half, after, n, held, anees := 10.0, 60.0, 3, 0.95, 2.0
 	r := results.Run{
 		Drive: folder, DriveFile: folder, Vehicle: "van", Map: "town", MapFingerprint: "f", Setting: setting, Set: []string{},
 		AlertLimitM: 25, Program: "p", Version: "v", Command: []string{"leadline", "replay", "a b"},
 		Places: []results.Place{{Name: "mast", Lon: -29.99, Lat: 45}},
 	}
 	s := &score.Score{Drive: folder, Posteriors: 600, LocatedAfterS: &after}
-	s.Figures = score.Figures{Scored: 540, RMSEM: &half, MeanM: &half, P50M: &half, P95M: &half, MaxM: &half, Coverage95: &half, ANEES: &half, BeyondProtection: &n}
+	s.Figures = score.Figures{Scored: 540, RMSEM: &half, MeanM: &half, P50M: &half, P95M: &half, MaxM: &half, Coverage95: &held, ANEES: &anees, BeyondProtection: &n}
 	s.RankAlong, s.RankAcross, s.Independent = make([]int, 20), make([]int, 20), &after
 	s.RankAlong[3], s.RankAcross[7] = 400, 500
 	s.Sensors = []score.Innovation{{Sensor: "odo", Kind: "travel", Component: 1, Weighed: 9, Scores: 9, Histogram: make([]int, 16)}, {Sensor: "gyro"}}
@@ -210,7 +210,7 @@ func TestSeveral(t *testing.T) {
 	if len(undrawn) != 3 || !undrawn["drive-00"] || !undrawn["drive-02"] || undrawn["drive-01"] {
 		t.Errorf("without pictures: %v", undrawn)
 	}
-	for _, want := range []string{"without the map under them: no such map", "2 different programs", "3 of 63 runs", "drive-07 · a=2"} {
+	for _, want := range []string{"without the map under them: no such map", "2 different programs", "3 of 63 runs", "drive-07 · a=<wbr>2"} {
 		if !strings.Contains(page, want) {
 			t.Errorf("the page does not say %q", want)
 		}
@@ -218,7 +218,7 @@ func TestSeveral(t *testing.T) {
 	if len(page) > 5e6 {
 		t.Errorf("%d runs take %d bytes", len(r.Runs), len(page))
 	}
-	if r, _ := written(t, Input{Dirs: []string{filepath.Join(dir, "a=2"), other}}); len(r.Comparisons) != 0 || !strings.Contains(r.Cautions[0], "no drive is in both") {
+	if r, _ := written(t, Input{Dirs: []string{filepath.Join(dir, "a=2"), other}}); len(r.Comparisons) != 0 || !strings.Contains(strings.Join(r.Cautions, "\n"), "no drive is in both") {
 		t.Errorf("%v", r.Cautions)
 	}
 	for want, dirs := range map[string][]string{

@@ -1,6 +1,7 @@
 package report
 
 import (
+	"fmt"
 	"math"
 
 	"leadline/engine/geo"
@@ -63,6 +64,7 @@ type series struct {
 	class   [classes]int
 	grid    map[[2]int16]int // of protection radius and error, see gridOf
 	noBound int              // known errors without a bounded radius
+	known   int              // errors
 	weak    stretches
 }
 
@@ -87,6 +89,9 @@ func (s *series) add(row track.Row) {
 	} else if p.known {
 		s.noBound++
 	}
+	if p.known {
+		s.known++
+	}
 	s.weak.add(row, class, s.startNS)
 	if s.n%s.every == 0 {
 		s.points = append(s.points, p)
@@ -101,6 +106,17 @@ func (s *series) add(row track.Row) {
 		s.points = s.points[:s.most]
 		s.every *= 2
 	}
+}
+
+// checked says how much of a run could be compared with a truth, if that is not all.
+func (s *series) checked() string {
+	switch share := float64(s.known) / float64(max(1, s.n)); {
+	case s.known == 0:
+		return " (not checked against a truth)"
+	case share < 0.99:
+		return fmt.Sprintf(" (%s checked against a truth)", percent(math.Floor(100*share)/100))
+	}
+	return ""
 }
 
 // join takes a later point into this one.

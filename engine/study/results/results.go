@@ -30,6 +30,8 @@ const (
 	TimingFile = "timing.json"
 	TableFile  = "track.csv"
 
+	FindingsFile = "findings.json" // where nothing is varied
+
 	GPXFile     = "track.gpx"     // if asked for
 	ParquetFile = "track.parquet" // if asked for
 
@@ -84,6 +86,14 @@ type Place struct {
 	Name string  `json:"name"`
 	Lon  float64 `json:"lon"`
 	Lat  float64 `json:"lat"`
+}
+
+// Findings are what a replay found of itself, in words.
+type Findings struct {
+	// Suspect is what speaks for a mistake; none if nothing does.
+	Suspect []string `json:"suspect"`
+	// Verdict is that of the usual mistakes that were tried, "" where none were.
+	Verdict string `json:"verdict,omitempty"`
 }
 
 // Result is a run's folder that was read.
