@@ -37,8 +37,12 @@ type caution struct {
 	text  string
 }
 
-// mostAlike is how many cautions of one gravity are told in full; more are named.
-const mostAlike = 5
+// Of cautions of one gravity mostAlike are told in full, and the runs of mostNamed more
+// are named.
+const (
+	mostAlike = 3
+	mostNamed = 5
+)
 
 // chance is how often a page says that figures miss their promises although all are
 // kept, at most: it is shared evenly over the tests of all runs (Bonferroni's
@@ -70,7 +74,11 @@ func told(list []caution) []string {
 			}
 		}
 		if len(names) > 0 {
-			out = append(out, fmt.Sprintf("Such cautions are to be had against %d more runs, too, the worst first: %s.", len(names), strings.Join(names, "; ")))
+			more := ""
+			if n := len(names) - mostNamed; n > 0 {
+				more = fmt.Sprintf("; and %d more", n)
+			}
+			out = append(out, fmt.Sprintf("The like goes for %d more runs, the worst first: %s%s.", len(names), strings.Join(names[:min(len(names), mostNamed)], "; "), more))
 		}
 	}
 	return out
@@ -141,12 +149,12 @@ func (x *Run) cautions(name string, level float64) (out []caution) {
 	x.promises(say, level)
 	switch e := s.TruthElsewhen; {
 	case e != nil:
-		say(unchecked, 0, ": its error is not known, %s Its radii are the model's own, and usable is not checked: mend the times, and replay it again.", e)
+		say(unchecked, 0, ": its error is not known: %s Its radii are the model's own, and usable is not checked: mend the times, and replay it again.", e)
 	case s.Figures.Scored == 0 && s.FiguresAll.Scored == 0:
 		say(unchecked, 0, " has no truth to compare with: of it only radii are shown, which are the model's own, and usable is not checked. A truth in the drive, or replay --hold-out-fixes, checks it.")
 	}
 	if x.Run.Partial {
-		say(impaired, 1, " is partial: %s. The same replay goes on from there.", strings.TrimSuffix(x.Run.Stopped, "."))
+		say(impaired, 1, " is partial: %s. Its figures are of less of the drive: see what ended it, and replay it again.", strings.TrimSuffix(x.Run.Stopped, "."))
 	}
 	if n := x.Run.Refused; n > 0 {
 		say(impaired, float64(n)/float64(n+x.Run.Accepted), ": %d of %d measurements were refused, first %s. Mend what they are refused for, or leave their sensor out.", n, n+x.Run.Accepted, strings.TrimSuffix(x.Run.FirstRefusal, "."))

@@ -154,7 +154,7 @@ func TestWorstFirst(t *testing.T) {
 	wide.Figures.Coverage50 = &share
 	got := judged(t, append(list, wide, off)...)
 	if len(got) != 1+mostAlike+1+1 || !strings.HasPrefix(got[0], "drive-11: all 3 truths lie off the map") || !strings.Contains(got[1], "ANEES is 18") ||
-		!strings.Contains(got[1+mostAlike], "against 4 more runs, too, the worst first: drive-4; drive-3; drive-2; drive-1.") || !strings.Contains(got[2+mostAlike], "less sure") {
+		!strings.Contains(got[1+mostAlike], "goes for 6 more runs, the worst first: drive-6; drive-5; drive-4; drive-3; drive-2; and 1 more.") || !strings.Contains(got[2+mostAlike], "less sure") {
 		t.Errorf("%q", got)
 	}
 }
