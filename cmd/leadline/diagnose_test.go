@@ -79,11 +79,18 @@ func TestReplayDiagnoses(t *testing.T) {
 	if strings.Contains(text, "suspect") || strings.Contains(text, "verdict") {
 		t.Errorf("a good drive is suspect:\n%s", text)
 	}
-	text = good(t, "replay", reversed, "--map", mapPath, "--max-cells", "1000")
+	out := filepath.Join(dir, "out")
+	text = good(t, "replay", reversed, "--map", mapPath, "--max-cells", "1000", "--out", out)
 	for _, want := range []string{"suspect", "mistakes", "gain, nats", "verdict", "gyro: turn sign reversed", "`sign: -1`"} {
 		if !strings.Contains(text, want) {
 			t.Errorf("a reversed gyro: no %q in\n%s", want, text)
 		}
+	}
+	// A report says so first.
+	var page struct{ Cautions []string }
+	readJSON(t, good(t, "report", out, "--json"), &page)
+	if len(page.Cautions) == 0 || !strings.HasPrefix(page.Cautions[0], "reversed is suspect: ") || !strings.Contains(page.Cautions[0], "logs: gyro: turn sign reversed") {
+		t.Errorf("the report's cautions: %q", page.Cautions)
 	}
 	var s why
 	readJSON(t, good(t, "replay", reversed, "--map", mapPath, "--json", "--diagnose", "never", "--explain", "30", "--explain-within", "500ms"), &s)

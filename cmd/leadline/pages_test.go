@@ -16,6 +16,7 @@ import (
 	"leadline/engine/drivefile"
 	"leadline/engine/sensor"
 	"leadline/engine/session"
+	"leadline/engine/study/results"
 	"leadline/engine/study/score"
 	"leadline/engine/summary"
 	leadlinev1 "leadline/proto/leadline/v1"
@@ -226,6 +227,7 @@ func TestPagesNames(t *testing.T) {
 		figures = append(figures, strings.TrimSuffix(k, "_all"))
 	}
 	wantWords(t, page, "field of score.json", figures)
+	wantWords(t, readPage(t, "docs/results.md"), "field of findings.json", keys(reflect.TypeFor[results.Findings](), "json"))
 }
 
 // TestPagesDefaults: the defaults that the pages state are those of a suite

@@ -197,7 +197,7 @@ func TestSuspect(t *testing.T) {
 
 // TestBreaks: names break after their signs, and are escaped first.
 func TestBreaks(t *testing.T) {
-	if got, want := string(breaks("a_b=<3>&1.5")), "a_<wbr>b=<wbr>&lt;3&gt;&amp;1.5"; got != want {
+	if got, want := string(breaks("odo.a_b=<3>&1.5. --hold-out")), `odo.<wbr>a_<wbr>b=<wbr>&lt;3&gt;&amp;1.5. <span class="flag">--hold-out</span>`; got != want {
 		t.Errorf("%s, want %s", got, want)
 	}
 }

@@ -25,7 +25,7 @@ func (x *Run) details() (out []detail) {
 	add("p99_9_m", f.P999M, "99.9 %")
 	add("coverage50", f.Coverage50, "share of truths within the 50 % radius")
 	add("coverage99", f.Coverage99, "share of truths within the 99 % radius")
-	add("anees_low", f.ANEESLow, "where 95 % of such means are, of independent errors, from")
+	add("anees_low", f.ANEESLow, "where 95 % of such means are, were all errors independent, from")
 	add("anees_high", f.ANEESHigh, "to")
 	add("right_road_fraction", f.RightRoadFraction, "share with the right road")
 	add("located_after_m", s.LocatedAfterM, "metres travelled until first located")

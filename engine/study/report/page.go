@@ -11,6 +11,7 @@ import (
 	"math"
 	"os"
 	"path/filepath"
+	"regexp"
 	"slices"
 	"strings"
 
@@ -57,11 +58,16 @@ var page = template.Must(template.New("page").Funcs(template.FuncMap{
 	"breaks":  breaks,
 }).Parse(pageText))
 
-// breaks lets a long name break after its signs, and not within a word.
+// breaks lets a long name break after its signs, and not within a word, nor a flag.
 func breaks(s string) template.HTML {
-	text := strings.NewReplacer("_", "_<wbr>", "=", "=<wbr>", "/", "/<wbr>", ",", ",<wbr>", ":", ":<wbr>").Replace(html.EscapeString(s))
+	text := flags.ReplaceAllString(signs.ReplaceAllString(html.EscapeString(s), "$0<wbr>"), `<span class="flag">$0</span>`)
 	return template.HTML(text) //nolint:gosec // escaped
 }
+
+var (
+	signs = regexp.MustCompile(`[_=/,:]|[a-z]\.\b`) // no number's point
+	flags = regexp.MustCompile(`--[a-z-]+`)
+)
 
 func percent(v float64) string { return fmt.Sprintf("%.3g %%", 100*v) }
 
