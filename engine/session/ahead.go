@@ -31,7 +31,7 @@ func (s *Session) Ahead() (*Ahead, error) {
 	}
 	c := &Session{
 		vehicle: s.vehicle, space: s.space, lines: s.lines, names: s.names, suite: s.suite, dim: s.dim,
-		cellsM: s.cellsM, maxCells: s.maxCells, maxCarried: maxCarried,
+		cellsM: s.cellsM, maxCells: s.maxCells, maxCarried: maxCarried, manyPieces: s.manyPieces,
 		rates: s.rates, nowhere: s.nowhere, near: s.near, entry: s.entry, areaM2: s.areaM2,
 		state: s.state.clone(), accepted: s.accepted, refused: s.refused,
 	}

@@ -132,7 +132,7 @@ func TestFieldsOfCheckpoints(t *testing.T) {
 		v      any
 		fields int
 	}{
-		{Session{}, 56},
+		{Session{}, 57},
 		{state{}, 23},
 		{aside{}, 12},
 		{snapshot{}, 3},

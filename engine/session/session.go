@@ -151,6 +151,7 @@ type Session struct {
 	maxCarried, strideM            float64
 	followed                       float64 // work of the present move
 	followLimit                    float64 // in tests, see maxFollowed
+	manyPieces                     float64 // the constant, less in tests
 	// What is kept beside the belief, see aside.
 	rates   rates
 	nowhere *filter.Belief // see anyPlace; never changed once it is made
@@ -243,7 +244,7 @@ func prepare(c Config) (*Session, error) {
 	s := &Session{
 		posteriorS: c.PosteriorS,
 		vehicle:    c.Vehicle, space: c.Space, names: c.Names, dim: 2, maxCells: c.MaxCells, hasher: summary.NewHasher(),
-		beginWork: c.Begin, desks: c.Desks, unguarded: c.Unguarded, fromAnywhere: c.Start.Kind == Anywhere, wideSize: wideSize, hugeSize: hugeSize, strideM: strideM, maxWaiting: maxWaiting,
+		beginWork: c.Begin, desks: c.Desks, unguarded: c.Unguarded, fromAnywhere: c.Start.Kind == Anywhere, wideSize: wideSize, hugeSize: hugeSize, strideM: strideM, maxWaiting: maxWaiting, manyPieces: manyPieces,
 	}
 	if s.maxCells == 0 {
 		s.maxCells = defaultMaxCells

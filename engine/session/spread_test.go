@@ -166,3 +166,30 @@ func TestFarDisplacement(t *testing.T) {
 		t.Errorf("one increment ends at %v, covariance %+v; ten at %v, %+v", one.MeanFrame, one.CovFrame, ten.MeanFrame, ten.CovFrame)
 	}
 }
+
+// TestWideWithoutMotion: where a wide belief is spread at each of many short steps,
+// it is taken to cells of a third of what each spreads by, and what it says of the
+// place is what the finer cells say.
+func TestWideWithoutMotion(t *testing.T) {
+	streets := city(11, 100)
+	run := func(manyPieces float64) (*Session, *summary.Posterior) {
+		s := open(t, Config{Space: streets, Names: streets, Suite: onRoads(), Start: pointStart(streets, geo.Point{N: 20}, 25)})
+		s.manyPieces = manyPieces
+		var events []sensor.Event
+		for i := range 6 {
+			events = append(events, everywhere(streets.Frame(), 0.2*float64(i), i))
+		}
+		feed(t, s, events)
+		return s, s.Latest()
+	}
+	fine, want := run(math.Inf(1))
+	coarse, got := run(3e3)
+	if 2*coarse.Size() > fine.Size() {
+		t.Errorf("%d Gaussians, of %d at the finer cells", coarse.Size(), fine.Size())
+	}
+	spread := func(p *summary.Posterior) float64 { return math.Sqrt(p.CovFrame.EE + p.CovFrame.NN) }
+	if d := got.MeanFrame.Sub(want.MeanFrame).Norm(); d > 0.01*spread(want) || math.Abs(spread(got)/spread(want)-1) > 0.01 {
+		t.Errorf("at %v within %.1f m, with the finer cells at %v within %.1f m", got.MeanFrame, spread(got), want.MeanFrame, spread(want))
+	}
+	t.Logf("%d of %d Gaussians, cells of %.1f and %.1f m", coarse.Size(), fine.Size(), coarse.CellM(), fine.CellM())
+}
