@@ -63,7 +63,7 @@ func frame(line []byte) (s sentence, pass passed, bad *refusal) {
 	}
 	body := text[:star]
 	if is := checksum(body); byte(said) != is {
-		return s, "", &refusal{start + star + 2, "checksum", fmt.Sprintf("%s: it should be %02X", line[start:], is)}
+		return s, "", &refusal{start + star + 2, wrongChecksum, fmt.Sprintf("%s: it should be %02X", line[start:], is)}
 	}
 	for i, c := range body {
 		if c < ' ' || c > '~' {
@@ -107,8 +107,11 @@ func upper(s string) bool {
 	return true
 }
 
-// noChecksum is the reason of a sentence that has none.
-const noChecksum = "no checksum"
+// The reasons of a sentence that has no checksum, or another than it should have.
+const (
+	noChecksum    = "no checksum"
+	wrongChecksum = "checksum"
+)
 
 // checksum is the exclusive or of all bytes (NMEA 0183).
 func checksum(body []byte) (x byte) {

@@ -160,12 +160,28 @@ func (n *NMEA) End() error {
 			return err
 		}
 	}
-	if r := n.tally.reasons[noChecksum]; r != nil && 2*r.Count > n.sentences && n.tally.Usable() == 0 && n.tally.Truths == 0 {
-		return fmt.Errorf("%s: %d of %d sentences have no checksum, first %s: one without it may be damaged and is not used; have what writes the log keep the two digits after the *",
-			n.tally.Log, r.Count, n.sentences, r.First[0])
+	if err := n.unsummed(); err != nil {
+		return err
 	}
 	if from := n.o.Time.From; (from == "" || from == FromSentence) && !n.utc.known {
 		return fmt.Errorf("%s: no sentence says the time and the date (ZDA, or RMC with a fix): state the date, or take the times from a prefix or a tag", n.tally.Log)
+	}
+	return nil
+}
+
+// unsummed is the error of a log of which nothing can be used since most of its
+// sentences lack their checksum or have a wrong one.
+func (n *NMEA) unsummed() error {
+	if n.tally.Usable() > 0 || n.tally.Truths > 0 {
+		return nil
+	}
+	for _, c := range []struct{ reason, what, remedy string }{
+		{noChecksum, "have no checksum", "one without it may be damaged and is not used; have what writes the log keep the two digits after the *"},
+		{wrongChecksum, "have another checksum than their text", "they were damaged or changed on the way and are not used; have what writes the log leave each sentence as it came"},
+	} {
+		if r := n.tally.reasons[c.reason]; r != nil && 2*r.Count > n.sentences {
+			return fmt.Errorf("%s: %d of %d sentences %s, first %s: %s", n.tally.Log, r.Count, n.sentences, c.what, r.First[0], c.remedy)
+		}
 	}
 	return nil
 }

@@ -80,8 +80,8 @@ func TestTimesOfSentences(t *testing.T) {
 	}
 }
 
-// TestNoChecksums: a log whose sentences have no checksum says so, and not that
-// none says the time; one among others says nothing of that.
+// TestNoChecksums: a log whose sentences have no checksum, or wrong ones, says so,
+// and not that none says the time; one among others says nothing of that.
 func TestNoChecksums(t *testing.T) {
 	read := func(text string) error {
 		_, err := ReadNMEA(strings.NewReader(text), "x.nmea", &Sentences{}, func(Record) error { return nil })
@@ -92,6 +92,13 @@ func TestNoChecksums(t *testing.T) {
 		t.Errorf("%v", err)
 	}
 	if err := read(bare + sum("SDDPT,14.39,0.00") + "\n"); err == nil || !strings.Contains(err.Error(), "2 of 3 sentences") {
+		t.Errorf("%v", err)
+	}
+	wrong := "$GPZDA,120000,01,05,2030,,*00\n$SDDPT,14.39,0.00*01\n"
+	if err := read(wrong + sum("SDDPT,14.39,0.00") + "\n"); err == nil || !strings.Contains(err.Error(), "x.nmea: 2 of 3 sentences have another checksum than their text, first x.nmea:1:") {
+		t.Errorf("%v", err)
+	}
+	if err := read("$SDDPT,14.39,0.00*01\n" + sum("SDDPT,14.39,0.00") + "\n"); err == nil || !strings.Contains(err.Error(), "no sentence says the time") {
 		t.Errorf("%v", err)
 	}
 	if err := read("$SDDPT,14.39,0.00\n" + sum("GPZDA,120000,01,05,2030,,") + "\n" + sum("SDDPT,14.39,0.00") + "\n"); err != nil {
