@@ -249,6 +249,9 @@ func (s *stream) increments(t *table, c *cells, at sensor.Time) (since sensor.Ti
 		if made[i], can = f.increment(c.num[f.name], dt); !can {
 			detail = fmt.Sprintf("%s moves by %v in %v s", f.name, made[i], dt)
 			s.begin(c, at)
+			if !f.def.Counter {
+				return at, "more than moves in a step", detail + ": if its column goes on from row to row, say counter: true"
+			}
 			return at, "counter jumps", detail
 		}
 	}
@@ -281,8 +284,13 @@ func (s *stream) hold(c *cells) {
 	}
 }
 
+// tooMuch is how many times what a counter may bring no plain increment does:
+// 1500 m in a second, and 20 turns.
+const tooMuch = 10
+
 // increment is what happened in dt seconds, in the field's own unit; false if
-// a counter moved by more than it can.
+// a counter moved by more than it can, or a plain increment by tooMuch times that,
+// as what counts up does when it is read as increments.
 func (f *boundField) increment(v, dt float64) (float64, bool) {
 	switch {
 	case f.def.Counter:
@@ -299,5 +307,5 @@ func (f *boundField) increment(v, dt float64) (float64, bool) {
 	}
 	v += f.pending
 	f.pending = 0
-	return v, true
+	return v, math.Abs(v) <= tooMuch*f.def.maxRate(f.of)*math.Max(dt, 1)
 }

@@ -209,6 +209,12 @@ func TestIncrementsAndTime(t *testing.T) {
 			map[string]int{"first of x": 1},
 		},
 		{
+			"a counter that is not said to be one", "{column: a}", "0 41200,1 41203,2 41206,3 1400",
+			[]string{"12:00:03 x travel 1s 1400 ±0"},
+			map[string]int{"more than moves in a step: x": 2},
+			map[string]int{"first of x": 1},
+		},
+		{
 			"a stated rate", "{column: a, counter: true, max_rate: 3}", "0 0,1 2,2 6,3 7",
 			[]string{"12:00:01 x travel 1s 2 ±0", "12:00:03 x travel 1s 1 ±0"},
 			map[string]int{"counter jumps: x": 1},

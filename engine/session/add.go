@@ -183,7 +183,7 @@ func (s *Session) plausible(ev sensor.Event) error {
 	}
 	// 100 m more, for increments of a few milliseconds.
 	if most := TooFast*s.suite.Vehicle.MaxSpeedMPS*span + 100; d > most || sigma > most {
-		return &Refusal{Unusable, fmt.Sprintf("sensor %q: %s: %.0f m with a sigma of %.0f m in %.3f s is beyond %d times the suite's max_speed_mps, %g: check its unit, leave out what tells nothing, or raise max_speed_mps",
+		return &Refusal{Unusable, fmt.Sprintf("sensor %q: %s: %.0f m with a sigma of %.0f m in %.3f s is beyond %d times the suite's max_speed_mps, %g: check its unit and that nothing that counts up is taken for increments, leave out what tells nothing, or raise max_speed_mps",
 			ev.Sensor, ev.Measurement.Kind(), d, sigma, span, TooFast, s.suite.Vehicle.MaxSpeedMPS)}
 	}
 	if d > tooFarM || sigma > tooFarM {
