@@ -45,7 +45,7 @@ func TestForecastAndTuneWrong(t *testing.T) {
 		{"tune " + drive + " --suite truck --figure vehicle.hold_s=1 --map " + roads, "give KEY=LOW:HIGH"},
 		{"tune " + drive + " --suite truck --figure vehicle.hold --map " + roads, `there is no "hold" in vehicle`},
 		{"tune " + drive + " --suite truck --figure vehicle.hold_s --plots p --no-profile", "give one of the two"},
-		{"tune " + drive + " --suite truck --figure vehicle.hold_s --hold-out 2 --map nowhere.roads.arrow", "there is no map file"},
+		{"tune " + drive + " --suite truck --figure vehicle.hold_s --map nowhere.roads.arrow", "there is no map file"},
 	} {
 		out.Reset()
 		errs.Reset()

@@ -142,15 +142,31 @@ func replayDrives(c *cobra.Command, o replayOptions, paths []string) error {
 	case varied:
 		err = printSweep(c.OutOrStdout(), sum)
 	}
-	if ctx.Err() != nil {
-		failed = append(failed, o.interrupted(sum.Runs-sum.CutShort, all))
+	if err == nil {
+		err = firstOf(failed)
 	}
-	if err == nil && len(failed) > 0 {
-		if err = failed[0]; len(failed) > 1 {
-			err = fmt.Errorf("%w (and %d more runs)", err, len(failed)-1)
+	if ctx.Err() != nil {
+		cut := o.interrupted(sum.Runs-sum.CutShort, all)
+		if err != nil {
+			cut = failure{fmt.Errorf("%w; besides, %w", cut, err)}
 		}
+		return cut
 	}
 	return err
+}
+
+// firstOf is the first of the errors of runs, with how many more there were.
+func firstOf(failed []error) error {
+	switch n := len(failed); n {
+	case 0:
+		return nil
+	case 1:
+		return failed[0]
+	case 2:
+		return fmt.Errorf("%w (and one more run)", failed[0])
+	default:
+		return fmt.Errorf("%w (and %d more runs)", failed[0], n-1)
+	}
 }
 
 // interrupted says what is left of a replay that a signal ended after so many whole runs
@@ -287,7 +303,11 @@ func (o *replayOptions) say(ctx context.Context, c *cobra.Command, m *mapFile, r
 		}
 	}
 	if !o.asJSON {
-		if err := errors.Join(printScore(out, run), why.printFindings(out)); err != nil {
+		err := errors.Join(printScore(out, run), why.printFindings(out))
+		if err == nil && run.Kept != nil && o.tries(why.Findings) {
+			_, err = fmt.Fprintln(out, "  next         usual mistakes are tried, which may take minutes; --diagnose never leaves that out")
+		}
+		if err != nil {
 			return err
 		}
 	}

@@ -45,6 +45,11 @@ func makeReport(c *cobra.Command, o reportOptions, dirs []string) error {
 	if o.output == "" && o.pictures == "" && !o.asJSON {
 		return errors.New("say what to make: --output REPORT.html, --pictures FOLDER or --json")
 	}
+	if o.output != "" { // what goes into it takes a while
+		if err := writable("--output", o.output, filepath.Dir(o.output), "."+filepath.Base(o.output)+"."); err != nil {
+			return err
+		}
+	}
 	grounds := &grounds{paths: o.maps}
 	defer grounds.close()
 	r, err := report.Make(report.Input{

@@ -54,6 +54,8 @@ func tuneSuite(c *cobra.Command, o tuneOptions, paths []string) error {
 		return fmt.Errorf("--max-cells is %d: give a whole number, 1 or more", o.MaxCells)
 	case o.holdEvery < 0 || o.holdEvery == 1:
 		return fmt.Errorf("--hold-out is %d: give 2 or more, or 0 to hold none out", o.holdEvery)
+	case o.holdEvery > len(paths):
+		return fmt.Errorf("--hold-out %d holds none out of so few drives, %d: give as many as that, a smaller number, or leave it out", o.holdEvery, len(paths))
 	case o.plots != "" && o.NoProfile:
 		return errors.New("--plots draws the profiles that --no-profile leaves out: give one of the two")
 	}

@@ -155,7 +155,7 @@ func assign(v reflect.Value, key, value string) error {
 	case reflect.Float64:
 		x, err := strconv.ParseFloat(value, 64)
 		if err != nil {
-			return wrong("a number")
+			return wrong("one number")
 		}
 		v.SetFloat(x)
 	case reflect.Int:

@@ -110,7 +110,7 @@ func TestSetWrong(t *testing.T) {
 		{"sensors.odo.noise", "1", "suite key sensors.odo.noise has parts"},
 		{"sensors", "1", "suite key sensors has parts"},
 		{"vehicle.alert_limit_m.x", "1", "vehicle.alert_limit_m is a value and has no parts"},
-		{"vehicle.alert_limit_m", "far", `suite key vehicle.alert_limit_m is "far": want a number`},
+		{"vehicle.alert_limit_m", "far", `suite key vehicle.alert_limit_m is "far": want one number`},
 		{"vehicle.alert_limit_m", "-1", "vehicle.alert_limit_m = -1: suite: vehicle.alert_limit_m: -1 must be a number from"},
 		{"sensors.odo.sign", "1.5", "want a whole number"},
 		{"sensors.odo.course", "maybe", "want true or false"},

@@ -82,7 +82,7 @@ type Options struct {
 	Belief  func(at sensor.Time, s *session.Session) error
 	// Settled, if set, is given the events as the session took them, in order.
 	Settled func([]sensor.Event)
-	// Stop, if set, is asked now and then; an error of it ends the run, and Run
+	// Stop, if set, is asked before each measurement but the first; an error of it ends the run, and Run
 	// returns what came before beside it.
 	Stop func() error
 }
@@ -110,7 +110,7 @@ func Run(d *drivefile.Drive, c session.Config, o Options) (*Result, error) {
 	events := Ordered(d.Events)
 	var stopped error
 	for i, ev := range events {
-		if o.Stop != nil && i > 0 && i%64 == 0 {
+		if o.Stop != nil && i > 0 {
 			if stopped = o.Stop(); stopped != nil {
 				break
 			}

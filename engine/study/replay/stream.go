@@ -91,7 +91,7 @@ func Stream(ctx context.Context, rd io.Reader, name string, c session.Config, o 
 	var stopped error
 	for n := 0; stopped == nil; n++ {
 		rec, err := in.Read()
-		if err == nil && n%64 == 0 {
+		if err == nil {
 			err = ctx.Err()
 		}
 		switch {

@@ -108,7 +108,7 @@ func (w *work) do(ctx context.Context) (err error) {
 		}
 		w.dir = filepath.Join(filepath.Dir(w.out.Dir), fmt.Sprintf(".%s.%d", u.drive.Name, os.Getpid()))
 		if err := os.MkdirAll(w.dir, 0o755); err != nil {
-			return fmt.Errorf("--out: %w", err)
+			return fmt.Errorf("--out: %w: give a folder that this program may make and write", err)
 		}
 		defer os.RemoveAll(w.dir)
 	}

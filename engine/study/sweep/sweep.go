@@ -8,8 +8,11 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"os"
 	"path/filepath"
 	"runtime"
+	"slices"
+	"strings"
 	"sync"
 
 	"leadline/engine/filter"
@@ -127,6 +130,9 @@ func (j *Job) units() ([]unit, error) {
 		if err := CheckPattern(p); err != nil {
 			return nil, err
 		}
+		if !slices.ContainsFunc(j.Drives, func(d Drive) bool { return matches([]string{p}, d.Name) }) {
+			return nil, fmt.Errorf("no drive has a name like %q, which is to be held out: there are %s", p, someNames(j.Drives))
+		}
 	}
 	var out []unit
 	held := 0
@@ -148,6 +154,20 @@ func (j *Job) units() ([]unit, error) {
 		return nil, fmt.Errorf("of %d drives %d are held out: hold some out and keep some", len(j.Drives), held/len(settings))
 	}
 	return out, nil
+}
+
+// someNames are the names of the first drives.
+func someNames(drives []Drive) string {
+	const most = 5
+	var names []string
+	for _, d := range drives[:min(most, len(drives))] {
+		names = append(names, d.Name)
+	}
+	text := strings.Join(names, ", ")
+	if n := len(drives) - most; n > 0 {
+		text += fmt.Sprintf(" and %d more", n)
+	}
+	return text
 }
 
 // Run runs a job. each is given the outcomes in the order of settings and drives,
@@ -178,6 +198,11 @@ func (j *Job) Run(ctx context.Context, each func(*Outcome) error) (*Summary, err
 		if err := each(o); err != nil {
 			cancel(err)
 			return nil, err
+		}
+	}
+	if j.Dir != "" {
+		for _, u := range units {
+			os.Remove(filepath.Dir(j.folder(u))) // that of a setting of which no run was kept: it is empty
 		}
 	}
 	sum.Partial = ctx.Err() != nil || sum.Runs < len(units)
