@@ -1233,13 +1233,13 @@ next:
 	VSUBPD     Y0, Y3, Y3
 	VCMPPD     $0x0d, expLeast<>+0(SB), Y3, Y4
 	VMAXPD     expClamp<>+0(SB), Y3, Y3
-	VMULPD     perLn2<>+0(SB), Y3, Y5
-	VADDPD     half<>+0(SB), Y5, Y5
-	VROUNDPD   $0x09, Y5, Y5
-	VMULPD     ln2High<>+0(SB), Y5, Y6
-	VSUBPD     Y6, Y3, Y3
-	VMULPD     ln2Low<>+0(SB), Y5, Y6
-	VSUBPD     Y6, Y3, Y3
+	VMULPD     perLn2<>+0(SB), Y3, Y6
+	VADDPD     half<>+0(SB), Y6, Y6
+	VROUNDPD   $0x09, Y6, Y6
+	VMULPD     ln2High<>+0(SB), Y6, Y5
+	VSUBPD     Y5, Y3, Y3
+	VMULPD     ln2Low<>+0(SB), Y6, Y5
+	VSUBPD     Y5, Y3, Y3
 	VMULPD     exp13<>+0(SB), Y3, Y7
 	VADDPD     exp12<>+0(SB), Y7, Y7
 	VMULPD     Y3, Y7, Y7
@@ -1266,18 +1266,18 @@ next:
 	VMULPD     Y3, Y7, Y7
 	VADDPD     Y3, Y7, Y7
 	VADDPD     one<>+0(SB), Y7, Y7
-	VMAXPD     expLowest<>+0(SB), Y5, Y3
-	VSUBPD     Y3, Y5, Y5
+	VMAXPD     expLowest<>+0(SB), Y6, Y3
+	VSUBPD     Y3, Y6, Y6
 	VCVTPD2DQY Y3, X3
-	VPMOVSXDQ  X3, Y6
-	VPADDQ     expBias<>+0(SB), Y6, Y6
-	VPSLLQ     $0x34, Y6, Y6
-	VMULPD     Y6, Y7, Y7
-	VCVTPD2DQY Y5, X3
-	VPMOVSXDQ  X3, Y6
-	VPADDQ     expBias<>+0(SB), Y6, Y6
-	VPSLLQ     $0x34, Y6, Y6
-	VMULPD     Y6, Y7, Y7
+	VPMOVSXDQ  X3, Y5
+	VPADDQ     expBias<>+0(SB), Y5, Y5
+	VPSLLQ     $0x34, Y5, Y5
+	VMULPD     Y5, Y7, Y7
+	VCVTPD2DQY Y6, X3
+	VPMOVSXDQ  X3, Y5
+	VPADDQ     expBias<>+0(SB), Y5, Y5
+	VPSLLQ     $0x34, Y5, Y5
+	VMULPD     Y5, Y7, Y7
 	VCMPPD     $0x0d, Y1, Y2, Y3
 	VANDPD     Y3, Y4, Y4
 	VMULPD     Y7, Y2, Y2
@@ -1385,13 +1385,13 @@ next:
 	VMAXPD     Y0, Y1, Y1
 	VCMPPD     $0x0d, expLeast<>+0(SB), Y2, Y3
 	VMAXPD     expClamp<>+0(SB), Y2, Y2
-	VMULPD     perLn2<>+0(SB), Y2, Y4
-	VADDPD     half<>+0(SB), Y4, Y4
-	VROUNDPD   $0x09, Y4, Y4
-	VMULPD     ln2High<>+0(SB), Y4, Y5
-	VSUBPD     Y5, Y2, Y2
-	VMULPD     ln2Low<>+0(SB), Y4, Y5
-	VSUBPD     Y5, Y2, Y2
+	VMULPD     perLn2<>+0(SB), Y2, Y5
+	VADDPD     half<>+0(SB), Y5, Y5
+	VROUNDPD   $0x09, Y5, Y5
+	VMULPD     ln2High<>+0(SB), Y5, Y4
+	VSUBPD     Y4, Y2, Y2
+	VMULPD     ln2Low<>+0(SB), Y5, Y4
+	VSUBPD     Y4, Y2, Y2
 	VMULPD     exp13<>+0(SB), Y2, Y6
 	VADDPD     exp12<>+0(SB), Y6, Y6
 	VMULPD     Y2, Y6, Y6
@@ -1418,18 +1418,18 @@ next:
 	VMULPD     Y2, Y6, Y6
 	VADDPD     Y2, Y6, Y6
 	VADDPD     one<>+0(SB), Y6, Y6
-	VMAXPD     expLowest<>+0(SB), Y4, Y2
-	VSUBPD     Y2, Y4, Y4
+	VMAXPD     expLowest<>+0(SB), Y5, Y2
+	VSUBPD     Y2, Y5, Y5
 	VCVTPD2DQY Y2, X2
-	VPMOVSXDQ  X2, Y5
-	VPADDQ     expBias<>+0(SB), Y5, Y5
-	VPSLLQ     $0x34, Y5, Y5
-	VMULPD     Y5, Y6, Y6
-	VCVTPD2DQY Y4, X2
-	VPMOVSXDQ  X2, Y5
-	VPADDQ     expBias<>+0(SB), Y5, Y5
-	VPSLLQ     $0x34, Y5, Y5
-	VMULPD     Y5, Y6, Y6
+	VPMOVSXDQ  X2, Y4
+	VPADDQ     expBias<>+0(SB), Y4, Y4
+	VPSLLQ     $0x34, Y4, Y4
+	VMULPD     Y4, Y6, Y6
+	VCVTPD2DQY Y5, X2
+	VPMOVSXDQ  X2, Y4
+	VPADDQ     expBias<>+0(SB), Y4, Y4
+	VPSLLQ     $0x34, Y4, Y4
+	VMULPD     Y4, Y6, Y6
 	VANDPD     Y3, Y6, Y6
 	VADDPD     one<>+0(SB), Y6, Y6
 	VPSRLQ     $0x34, Y6, Y2
@@ -1562,13 +1562,13 @@ next:
 	VMOVUPD    (CX), Y0
 	VCMPPD     $0x0d, expLeast<>+0(SB), Y0, Y1
 	VMAXPD     expClamp<>+0(SB), Y0, Y0
-	VMULPD     perLn2<>+0(SB), Y0, Y2
-	VADDPD     half<>+0(SB), Y2, Y2
-	VROUNDPD   $0x09, Y2, Y2
-	VMULPD     ln2High<>+0(SB), Y2, Y3
-	VSUBPD     Y3, Y0, Y0
-	VMULPD     ln2Low<>+0(SB), Y2, Y3
-	VSUBPD     Y3, Y0, Y0
+	VMULPD     perLn2<>+0(SB), Y0, Y3
+	VADDPD     half<>+0(SB), Y3, Y3
+	VROUNDPD   $0x09, Y3, Y3
+	VMULPD     ln2High<>+0(SB), Y3, Y2
+	VSUBPD     Y2, Y0, Y0
+	VMULPD     ln2Low<>+0(SB), Y3, Y2
+	VSUBPD     Y2, Y0, Y0
 	VMULPD     exp13<>+0(SB), Y0, Y4
 	VADDPD     exp12<>+0(SB), Y4, Y4
 	VMULPD     Y0, Y4, Y4
@@ -1595,18 +1595,18 @@ next:
 	VMULPD     Y0, Y4, Y4
 	VADDPD     Y0, Y4, Y4
 	VADDPD     one<>+0(SB), Y4, Y4
-	VMAXPD     expLowest<>+0(SB), Y2, Y0
-	VSUBPD     Y0, Y2, Y2
+	VMAXPD     expLowest<>+0(SB), Y3, Y0
+	VSUBPD     Y0, Y3, Y3
 	VCVTPD2DQY Y0, X0
-	VPMOVSXDQ  X0, Y3
-	VPADDQ     expBias<>+0(SB), Y3, Y3
-	VPSLLQ     $0x34, Y3, Y3
-	VMULPD     Y3, Y4, Y4
-	VCVTPD2DQY Y2, X0
-	VPMOVSXDQ  X0, Y3
-	VPADDQ     expBias<>+0(SB), Y3, Y3
-	VPSLLQ     $0x34, Y3, Y3
-	VMULPD     Y3, Y4, Y4
+	VPMOVSXDQ  X0, Y2
+	VPADDQ     expBias<>+0(SB), Y2, Y2
+	VPSLLQ     $0x34, Y2, Y2
+	VMULPD     Y2, Y4, Y4
+	VCVTPD2DQY Y3, X0
+	VPMOVSXDQ  X0, Y2
+	VPADDQ     expBias<>+0(SB), Y2, Y2
+	VPSLLQ     $0x34, Y2, Y2
+	VMULPD     Y2, Y4, Y4
 	VANDPD     Y1, Y4, Y4
 	VMOVUPD    Y4, (AX)
 	ADDQ       $0x20, AX
@@ -2309,7 +2309,7 @@ done:
 
 // func likelyAVX2(sums *float64, dst *float64, mass *float64, residual *float64, row *float64, extra *float64, flat *float64, lanes *float64, n int)
 // Requires: AVX, AVX2
-TEXT ·likelyAVX2(SB), NOSPLIT, $0-72
+TEXT ·likelyAVX2(SB), NOSPLIT, $256-72
 	MOVQ    dst+8(FP), AX
 	MOVQ    mass+16(FP), CX
 	MOVQ    residual+24(FP), DX
@@ -2321,100 +2321,463 @@ TEXT ·likelyAVX2(SB), NOSPLIT, $0-72
 	MOVQ    sums+0(FP), R10
 	VMOVUPD (R10), Y0
 	VMOVUPD 32(R10), Y1
-	XORQ    R11, R11
 
-next:
-	CMPQ       R11, R9
-	JGE        done
-	VMOVUPD    (BX)(R11*8), Y2
-	VMOVUPD    32(BX)(R11*8), Y3
+sixteen:
+	CMPQ       R9, $0x10
+	JB         sixteenDone
+	VMOVUPD    (BX), Y2
+	VMOVUPD    32(BX), Y3
 	VMULPD     Y2, Y2, Y2
 	VMULPD     Y3, Y3, Y3
 	VHADDPD    Y3, Y2, Y3
 	VPERMPD    $0xd8, Y3, Y3
 	VMULPD     64(R8), Y3, Y3
 	VMOVUPD    (R8), Y2
-	VADDPD     (SI)(R11*8), Y2, Y2
+	VADDPD     (SI), Y2, Y2
 	VMAXPD     Y2, Y3, Y2
 	VMOVUPD    one<>+0(SB), Y3
 	VDIVPD     Y2, Y3, Y2
-	VMOVUPD    (DX)(R11*8), Y4
-	VSUBPD     32(R8), Y4, Y4
-	VMULPD     Y4, Y4, Y4
-	VMULPD     Y2, Y4, Y4
-	VMULPD     minusHalf<>+0(SB), Y4, Y4
+	VMOVUPD    (DX), Y5
+	VSUBPD     32(R8), Y5, Y5
+	VMULPD     Y5, Y5, Y5
+	VMULPD     Y2, Y5, Y5
+	VMULPD     minusHalf<>+0(SB), Y5, Y5
 	VSQRTPD    Y2, Y2
 	VMULPD     96(R8), Y2, Y2
-	VMOVUPD    (DI)(R11*8), Y3
-	VCMPPD     $0x03, Y3, Y3, Y5
-	VBLENDVPD  Y5, Y4, Y3, Y4
+	VMOVUPD    (DI), Y3
+	VCMPPD     $0x03, Y3, Y3, Y4
+	VBLENDVPD  Y4, Y5, Y3, Y5
 	VMOVUPD    one<>+0(SB), Y3
-	VBLENDVPD  Y5, Y2, Y3, Y2
-	VANDPD     128(R8), Y5, Y5
-	VCMPPD     $0x03, Y4, Y4, Y3
-	VCMPPD     $0x0d, expLeast<>+0(SB), Y4, Y6
-	VMAXPD     expClamp<>+0(SB), Y4, Y4
-	VMULPD     perLn2<>+0(SB), Y4, Y7
-	VADDPD     half<>+0(SB), Y7, Y7
-	VROUNDPD   $0x09, Y7, Y7
-	VMULPD     ln2High<>+0(SB), Y7, Y8
-	VSUBPD     Y8, Y4, Y4
-	VMULPD     ln2Low<>+0(SB), Y7, Y8
-	VSUBPD     Y8, Y4, Y4
-	VMULPD     exp13<>+0(SB), Y4, Y9
-	VADDPD     exp12<>+0(SB), Y9, Y9
-	VMULPD     Y4, Y9, Y9
-	VADDPD     exp11<>+0(SB), Y9, Y9
-	VMULPD     Y4, Y9, Y9
-	VADDPD     exp10<>+0(SB), Y9, Y9
-	VMULPD     Y4, Y9, Y9
-	VADDPD     exp9<>+0(SB), Y9, Y9
-	VMULPD     Y4, Y9, Y9
-	VADDPD     exp8<>+0(SB), Y9, Y9
-	VMULPD     Y4, Y9, Y9
-	VADDPD     exp7<>+0(SB), Y9, Y9
-	VMULPD     Y4, Y9, Y9
-	VADDPD     exp6<>+0(SB), Y9, Y9
-	VMULPD     Y4, Y9, Y9
-	VADDPD     exp5<>+0(SB), Y9, Y9
-	VMULPD     Y4, Y9, Y9
-	VADDPD     exp4<>+0(SB), Y9, Y9
-	VMULPD     Y4, Y9, Y9
-	VADDPD     exp3<>+0(SB), Y9, Y9
-	VMULPD     Y4, Y9, Y9
-	VADDPD     exp2<>+0(SB), Y9, Y9
-	VMULPD     Y4, Y9, Y9
-	VMULPD     Y4, Y9, Y9
-	VADDPD     Y4, Y9, Y9
-	VADDPD     one<>+0(SB), Y9, Y9
-	VMAXPD     expLowest<>+0(SB), Y7, Y4
-	VSUBPD     Y4, Y7, Y7
-	VCVTPD2DQY Y4, X4
-	VPMOVSXDQ  X4, Y8
-	VPADDQ     expBias<>+0(SB), Y8, Y8
-	VPSLLQ     $0x34, Y8, Y8
-	VMULPD     Y8, Y9, Y9
-	VCVTPD2DQY Y7, X4
-	VPMOVSXDQ  X4, Y8
-	VPADDQ     expBias<>+0(SB), Y8, Y8
-	VPSLLQ     $0x34, Y8, Y8
-	VMULPD     Y8, Y9, Y9
-	VANDPD     Y6, Y9, Y9
-	VMULPD     Y2, Y9, Y9
-	VADDPD     Y5, Y9, Y9
-	VORPD      Y3, Y9, Y9
-	VMOVUPD    (CX)(R11*8), Y3
-	VADDPD     Y3, Y1, Y1
-	VMULPD     Y3, Y9, Y9
-	VCMPPD     $0x0d, 160(R8), Y3, Y3
-	VANDPD     Y3, Y9, Y9
-	VMOVUPD    Y9, (AX)(R11*8)
-	VADDPD     Y9, Y0, Y0
-	ADDQ       $0x04, R11
-	ADDQ       $0x20, BX
-	JMP        next
+	VBLENDVPD  Y4, Y2, Y3, Y2
+	VANDPD     128(R8), Y4, Y4
+	VCMPPD     $0x03, Y5, Y5, Y3
+	VORPD      Y3, Y4, Y4
+	VMOVUPD    Y4, 128(SP)
+	VCMPPD     $0x0d, expLeast<>+0(SB), Y5, Y3
+	VANDPD     Y3, Y2, Y2
+	VMOVUPD    Y2, (SP)
+	VMOVUPD    64(BX), Y2
+	VMOVUPD    96(BX), Y3
+	VMULPD     Y2, Y2, Y2
+	VMULPD     Y3, Y3, Y3
+	VHADDPD    Y3, Y2, Y3
+	VPERMPD    $0xd8, Y3, Y3
+	VMULPD     64(R8), Y3, Y3
+	VMOVUPD    (R8), Y2
+	VADDPD     32(SI), Y2, Y2
+	VMAXPD     Y2, Y3, Y2
+	VMOVUPD    one<>+0(SB), Y3
+	VDIVPD     Y2, Y3, Y2
+	VMOVUPD    32(DX), Y6
+	VSUBPD     32(R8), Y6, Y6
+	VMULPD     Y6, Y6, Y6
+	VMULPD     Y2, Y6, Y6
+	VMULPD     minusHalf<>+0(SB), Y6, Y6
+	VSQRTPD    Y2, Y2
+	VMULPD     96(R8), Y2, Y2
+	VMOVUPD    32(DI), Y3
+	VCMPPD     $0x03, Y3, Y3, Y4
+	VBLENDVPD  Y4, Y6, Y3, Y6
+	VMOVUPD    one<>+0(SB), Y3
+	VBLENDVPD  Y4, Y2, Y3, Y2
+	VANDPD     128(R8), Y4, Y4
+	VCMPPD     $0x03, Y6, Y6, Y3
+	VORPD      Y3, Y4, Y4
+	VMOVUPD    Y4, 160(SP)
+	VCMPPD     $0x0d, expLeast<>+0(SB), Y6, Y3
+	VANDPD     Y3, Y2, Y2
+	VMOVUPD    Y2, 32(SP)
+	VMOVUPD    128(BX), Y2
+	VMOVUPD    160(BX), Y3
+	VMULPD     Y2, Y2, Y2
+	VMULPD     Y3, Y3, Y3
+	VHADDPD    Y3, Y2, Y3
+	VPERMPD    $0xd8, Y3, Y3
+	VMULPD     64(R8), Y3, Y3
+	VMOVUPD    (R8), Y2
+	VADDPD     64(SI), Y2, Y2
+	VMAXPD     Y2, Y3, Y2
+	VMOVUPD    one<>+0(SB), Y3
+	VDIVPD     Y2, Y3, Y2
+	VMOVUPD    64(DX), Y7
+	VSUBPD     32(R8), Y7, Y7
+	VMULPD     Y7, Y7, Y7
+	VMULPD     Y2, Y7, Y7
+	VMULPD     minusHalf<>+0(SB), Y7, Y7
+	VSQRTPD    Y2, Y2
+	VMULPD     96(R8), Y2, Y2
+	VMOVUPD    64(DI), Y3
+	VCMPPD     $0x03, Y3, Y3, Y4
+	VBLENDVPD  Y4, Y7, Y3, Y7
+	VMOVUPD    one<>+0(SB), Y3
+	VBLENDVPD  Y4, Y2, Y3, Y2
+	VANDPD     128(R8), Y4, Y4
+	VCMPPD     $0x03, Y7, Y7, Y3
+	VORPD      Y3, Y4, Y4
+	VMOVUPD    Y4, 192(SP)
+	VCMPPD     $0x0d, expLeast<>+0(SB), Y7, Y3
+	VANDPD     Y3, Y2, Y2
+	VMOVUPD    Y2, 64(SP)
+	VMOVUPD    192(BX), Y2
+	VMOVUPD    224(BX), Y3
+	VMULPD     Y2, Y2, Y2
+	VMULPD     Y3, Y3, Y3
+	VHADDPD    Y3, Y2, Y3
+	VPERMPD    $0xd8, Y3, Y3
+	VMULPD     64(R8), Y3, Y3
+	VMOVUPD    (R8), Y2
+	VADDPD     96(SI), Y2, Y2
+	VMAXPD     Y2, Y3, Y2
+	VMOVUPD    one<>+0(SB), Y3
+	VDIVPD     Y2, Y3, Y2
+	VMOVUPD    96(DX), Y8
+	VSUBPD     32(R8), Y8, Y8
+	VMULPD     Y8, Y8, Y8
+	VMULPD     Y2, Y8, Y8
+	VMULPD     minusHalf<>+0(SB), Y8, Y8
+	VSQRTPD    Y2, Y2
+	VMULPD     96(R8), Y2, Y2
+	VMOVUPD    96(DI), Y3
+	VCMPPD     $0x03, Y3, Y3, Y4
+	VBLENDVPD  Y4, Y8, Y3, Y8
+	VMOVUPD    one<>+0(SB), Y3
+	VBLENDVPD  Y4, Y2, Y3, Y2
+	VANDPD     128(R8), Y4, Y4
+	VCMPPD     $0x03, Y8, Y8, Y3
+	VORPD      Y3, Y4, Y4
+	VMOVUPD    Y4, 224(SP)
+	VCMPPD     $0x0d, expLeast<>+0(SB), Y8, Y3
+	VANDPD     Y3, Y2, Y2
+	VMOVUPD    Y2, 96(SP)
+	VMAXPD     expClamp<>+0(SB), Y5, Y5
+	VMULPD     perLn2<>+0(SB), Y5, Y3
+	VADDPD     half<>+0(SB), Y3, Y3
+	VROUNDPD   $0x09, Y3, Y3
+	VMULPD     ln2High<>+0(SB), Y3, Y2
+	VSUBPD     Y2, Y5, Y5
+	VMULPD     ln2Low<>+0(SB), Y3, Y2
+	VSUBPD     Y2, Y5, Y5
+	VMAXPD     expClamp<>+0(SB), Y6, Y6
+	VMULPD     perLn2<>+0(SB), Y6, Y4
+	VADDPD     half<>+0(SB), Y4, Y4
+	VROUNDPD   $0x09, Y4, Y4
+	VMULPD     ln2High<>+0(SB), Y4, Y2
+	VSUBPD     Y2, Y6, Y6
+	VMULPD     ln2Low<>+0(SB), Y4, Y2
+	VSUBPD     Y2, Y6, Y6
+	VMAXPD     expClamp<>+0(SB), Y7, Y7
+	VMULPD     perLn2<>+0(SB), Y7, Y9
+	VADDPD     half<>+0(SB), Y9, Y9
+	VROUNDPD   $0x09, Y9, Y9
+	VMULPD     ln2High<>+0(SB), Y9, Y2
+	VSUBPD     Y2, Y7, Y7
+	VMULPD     ln2Low<>+0(SB), Y9, Y2
+	VSUBPD     Y2, Y7, Y7
+	VMAXPD     expClamp<>+0(SB), Y8, Y8
+	VMULPD     perLn2<>+0(SB), Y8, Y10
+	VADDPD     half<>+0(SB), Y10, Y10
+	VROUNDPD   $0x09, Y10, Y10
+	VMULPD     ln2High<>+0(SB), Y10, Y2
+	VSUBPD     Y2, Y8, Y8
+	VMULPD     ln2Low<>+0(SB), Y10, Y2
+	VSUBPD     Y2, Y8, Y8
+	VMULPD     exp13<>+0(SB), Y5, Y11
+	VMULPD     exp13<>+0(SB), Y6, Y12
+	VMULPD     exp13<>+0(SB), Y7, Y13
+	VMULPD     exp13<>+0(SB), Y8, Y14
+	VADDPD     exp12<>+0(SB), Y11, Y11
+	VADDPD     exp12<>+0(SB), Y12, Y12
+	VADDPD     exp12<>+0(SB), Y13, Y13
+	VADDPD     exp12<>+0(SB), Y14, Y14
+	VMULPD     Y5, Y11, Y11
+	VMULPD     Y6, Y12, Y12
+	VMULPD     Y7, Y13, Y13
+	VMULPD     Y8, Y14, Y14
+	VADDPD     exp11<>+0(SB), Y11, Y11
+	VADDPD     exp11<>+0(SB), Y12, Y12
+	VADDPD     exp11<>+0(SB), Y13, Y13
+	VADDPD     exp11<>+0(SB), Y14, Y14
+	VMULPD     Y5, Y11, Y11
+	VMULPD     Y6, Y12, Y12
+	VMULPD     Y7, Y13, Y13
+	VMULPD     Y8, Y14, Y14
+	VADDPD     exp10<>+0(SB), Y11, Y11
+	VADDPD     exp10<>+0(SB), Y12, Y12
+	VADDPD     exp10<>+0(SB), Y13, Y13
+	VADDPD     exp10<>+0(SB), Y14, Y14
+	VMULPD     Y5, Y11, Y11
+	VMULPD     Y6, Y12, Y12
+	VMULPD     Y7, Y13, Y13
+	VMULPD     Y8, Y14, Y14
+	VADDPD     exp9<>+0(SB), Y11, Y11
+	VADDPD     exp9<>+0(SB), Y12, Y12
+	VADDPD     exp9<>+0(SB), Y13, Y13
+	VADDPD     exp9<>+0(SB), Y14, Y14
+	VMULPD     Y5, Y11, Y11
+	VMULPD     Y6, Y12, Y12
+	VMULPD     Y7, Y13, Y13
+	VMULPD     Y8, Y14, Y14
+	VADDPD     exp8<>+0(SB), Y11, Y11
+	VADDPD     exp8<>+0(SB), Y12, Y12
+	VADDPD     exp8<>+0(SB), Y13, Y13
+	VADDPD     exp8<>+0(SB), Y14, Y14
+	VMULPD     Y5, Y11, Y11
+	VMULPD     Y6, Y12, Y12
+	VMULPD     Y7, Y13, Y13
+	VMULPD     Y8, Y14, Y14
+	VADDPD     exp7<>+0(SB), Y11, Y11
+	VADDPD     exp7<>+0(SB), Y12, Y12
+	VADDPD     exp7<>+0(SB), Y13, Y13
+	VADDPD     exp7<>+0(SB), Y14, Y14
+	VMULPD     Y5, Y11, Y11
+	VMULPD     Y6, Y12, Y12
+	VMULPD     Y7, Y13, Y13
+	VMULPD     Y8, Y14, Y14
+	VADDPD     exp6<>+0(SB), Y11, Y11
+	VADDPD     exp6<>+0(SB), Y12, Y12
+	VADDPD     exp6<>+0(SB), Y13, Y13
+	VADDPD     exp6<>+0(SB), Y14, Y14
+	VMULPD     Y5, Y11, Y11
+	VMULPD     Y6, Y12, Y12
+	VMULPD     Y7, Y13, Y13
+	VMULPD     Y8, Y14, Y14
+	VADDPD     exp5<>+0(SB), Y11, Y11
+	VADDPD     exp5<>+0(SB), Y12, Y12
+	VADDPD     exp5<>+0(SB), Y13, Y13
+	VADDPD     exp5<>+0(SB), Y14, Y14
+	VMULPD     Y5, Y11, Y11
+	VMULPD     Y6, Y12, Y12
+	VMULPD     Y7, Y13, Y13
+	VMULPD     Y8, Y14, Y14
+	VADDPD     exp4<>+0(SB), Y11, Y11
+	VADDPD     exp4<>+0(SB), Y12, Y12
+	VADDPD     exp4<>+0(SB), Y13, Y13
+	VADDPD     exp4<>+0(SB), Y14, Y14
+	VMULPD     Y5, Y11, Y11
+	VMULPD     Y6, Y12, Y12
+	VMULPD     Y7, Y13, Y13
+	VMULPD     Y8, Y14, Y14
+	VADDPD     exp3<>+0(SB), Y11, Y11
+	VADDPD     exp3<>+0(SB), Y12, Y12
+	VADDPD     exp3<>+0(SB), Y13, Y13
+	VADDPD     exp3<>+0(SB), Y14, Y14
+	VMULPD     Y5, Y11, Y11
+	VMULPD     Y6, Y12, Y12
+	VMULPD     Y7, Y13, Y13
+	VMULPD     Y8, Y14, Y14
+	VADDPD     exp2<>+0(SB), Y11, Y11
+	VADDPD     exp2<>+0(SB), Y12, Y12
+	VADDPD     exp2<>+0(SB), Y13, Y13
+	VADDPD     exp2<>+0(SB), Y14, Y14
+	VMULPD     Y5, Y11, Y11
+	VMULPD     Y6, Y12, Y12
+	VMULPD     Y7, Y13, Y13
+	VMULPD     Y8, Y14, Y14
+	VMULPD     Y5, Y11, Y11
+	VMULPD     Y6, Y12, Y12
+	VMULPD     Y7, Y13, Y13
+	VMULPD     Y8, Y14, Y14
+	VADDPD     Y5, Y11, Y11
+	VADDPD     one<>+0(SB), Y11, Y11
+	VADDPD     Y6, Y12, Y12
+	VADDPD     one<>+0(SB), Y12, Y12
+	VADDPD     Y7, Y13, Y13
+	VADDPD     one<>+0(SB), Y13, Y13
+	VADDPD     Y8, Y14, Y14
+	VADDPD     one<>+0(SB), Y14, Y14
+	VMAXPD     expLowest<>+0(SB), Y3, Y2
+	VSUBPD     Y2, Y3, Y3
+	VCVTPD2DQY Y2, X2
+	VPMOVSXDQ  X2, Y2
+	VPADDQ     expBias<>+0(SB), Y2, Y2
+	VPSLLQ     $0x34, Y2, Y2
+	VMULPD     Y2, Y11, Y11
+	VCVTPD2DQY Y3, X2
+	VPMOVSXDQ  X2, Y2
+	VPADDQ     expBias<>+0(SB), Y2, Y2
+	VPSLLQ     $0x34, Y2, Y2
+	VMULPD     Y2, Y11, Y11
+	VMAXPD     expLowest<>+0(SB), Y4, Y2
+	VSUBPD     Y2, Y4, Y4
+	VCVTPD2DQY Y2, X2
+	VPMOVSXDQ  X2, Y2
+	VPADDQ     expBias<>+0(SB), Y2, Y2
+	VPSLLQ     $0x34, Y2, Y2
+	VMULPD     Y2, Y12, Y12
+	VCVTPD2DQY Y4, X2
+	VPMOVSXDQ  X2, Y2
+	VPADDQ     expBias<>+0(SB), Y2, Y2
+	VPSLLQ     $0x34, Y2, Y2
+	VMULPD     Y2, Y12, Y12
+	VMAXPD     expLowest<>+0(SB), Y9, Y2
+	VSUBPD     Y2, Y9, Y9
+	VCVTPD2DQY Y2, X2
+	VPMOVSXDQ  X2, Y2
+	VPADDQ     expBias<>+0(SB), Y2, Y2
+	VPSLLQ     $0x34, Y2, Y2
+	VMULPD     Y2, Y13, Y13
+	VCVTPD2DQY Y9, X2
+	VPMOVSXDQ  X2, Y2
+	VPADDQ     expBias<>+0(SB), Y2, Y2
+	VPSLLQ     $0x34, Y2, Y2
+	VMULPD     Y2, Y13, Y13
+	VMAXPD     expLowest<>+0(SB), Y10, Y2
+	VSUBPD     Y2, Y10, Y10
+	VCVTPD2DQY Y2, X2
+	VPMOVSXDQ  X2, Y2
+	VPADDQ     expBias<>+0(SB), Y2, Y2
+	VPSLLQ     $0x34, Y2, Y2
+	VMULPD     Y2, Y14, Y14
+	VCVTPD2DQY Y10, X2
+	VPMOVSXDQ  X2, Y2
+	VPADDQ     expBias<>+0(SB), Y2, Y2
+	VPSLLQ     $0x34, Y2, Y2
+	VMULPD     Y2, Y14, Y14
+	VMULPD     (SP), Y11, Y11
+	VADDPD     128(SP), Y11, Y11
+	VMOVUPD    (CX), Y2
+	VADDPD     Y2, Y1, Y1
+	VMULPD     Y2, Y11, Y11
+	VCMPPD     $0x0d, 160(R8), Y2, Y2
+	VANDPD     Y2, Y11, Y11
+	VMOVUPD    Y11, (AX)
+	VADDPD     Y11, Y0, Y0
+	VMULPD     32(SP), Y12, Y12
+	VADDPD     160(SP), Y12, Y12
+	VMOVUPD    32(CX), Y2
+	VADDPD     Y2, Y1, Y1
+	VMULPD     Y2, Y12, Y12
+	VCMPPD     $0x0d, 160(R8), Y2, Y2
+	VANDPD     Y2, Y12, Y12
+	VMOVUPD    Y12, 32(AX)
+	VADDPD     Y12, Y0, Y0
+	VMULPD     64(SP), Y13, Y13
+	VADDPD     192(SP), Y13, Y13
+	VMOVUPD    64(CX), Y2
+	VADDPD     Y2, Y1, Y1
+	VMULPD     Y2, Y13, Y13
+	VCMPPD     $0x0d, 160(R8), Y2, Y2
+	VANDPD     Y2, Y13, Y13
+	VMOVUPD    Y13, 64(AX)
+	VADDPD     Y13, Y0, Y0
+	VMULPD     96(SP), Y14, Y14
+	VADDPD     224(SP), Y14, Y14
+	VMOVUPD    96(CX), Y2
+	VADDPD     Y2, Y1, Y1
+	VMULPD     Y2, Y14, Y14
+	VCMPPD     $0x0d, 160(R8), Y2, Y2
+	VANDPD     Y2, Y14, Y14
+	VMOVUPD    Y14, 96(AX)
+	VADDPD     Y14, Y0, Y0
+	ADDQ       $0x00000080, AX
+	ADDQ       $0x00000080, CX
+	ADDQ       $0x00000080, DX
+	ADDQ       $0x00000080, SI
+	ADDQ       $0x00000080, DI
+	ADDQ       $0x00000100, BX
+	SUBQ       $0x00000010, R9
+	JMP        sixteen
 
-done:
+sixteenDone:
+four:
+	CMPQ       R9, $0x04
+	JB         fourDone
+	VMOVUPD    (BX), Y2
+	VMOVUPD    32(BX), Y3
+	VMULPD     Y2, Y2, Y2
+	VMULPD     Y3, Y3, Y3
+	VHADDPD    Y3, Y2, Y3
+	VPERMPD    $0xd8, Y3, Y3
+	VMULPD     64(R8), Y3, Y3
+	VMOVUPD    (R8), Y2
+	VADDPD     (SI), Y2, Y2
+	VMAXPD     Y2, Y3, Y2
+	VMOVUPD    one<>+0(SB), Y3
+	VDIVPD     Y2, Y3, Y2
+	VMOVUPD    (DX), Y5
+	VSUBPD     32(R8), Y5, Y5
+	VMULPD     Y5, Y5, Y5
+	VMULPD     Y2, Y5, Y5
+	VMULPD     minusHalf<>+0(SB), Y5, Y5
+	VSQRTPD    Y2, Y2
+	VMULPD     96(R8), Y2, Y2
+	VMOVUPD    (DI), Y3
+	VCMPPD     $0x03, Y3, Y3, Y4
+	VBLENDVPD  Y4, Y5, Y3, Y5
+	VMOVUPD    one<>+0(SB), Y3
+	VBLENDVPD  Y4, Y2, Y3, Y2
+	VANDPD     128(R8), Y4, Y4
+	VCMPPD     $0x03, Y5, Y5, Y3
+	VORPD      Y3, Y4, Y4
+	VMOVUPD    Y4, 128(SP)
+	VCMPPD     $0x0d, expLeast<>+0(SB), Y5, Y3
+	VANDPD     Y3, Y2, Y2
+	VMOVUPD    Y2, (SP)
+	VMAXPD     expClamp<>+0(SB), Y5, Y5
+	VMULPD     perLn2<>+0(SB), Y5, Y3
+	VADDPD     half<>+0(SB), Y3, Y3
+	VROUNDPD   $0x09, Y3, Y3
+	VMULPD     ln2High<>+0(SB), Y3, Y2
+	VSUBPD     Y2, Y5, Y5
+	VMULPD     ln2Low<>+0(SB), Y3, Y2
+	VSUBPD     Y2, Y5, Y5
+	VMULPD     exp13<>+0(SB), Y5, Y4
+	VADDPD     exp12<>+0(SB), Y4, Y4
+	VMULPD     Y5, Y4, Y4
+	VADDPD     exp11<>+0(SB), Y4, Y4
+	VMULPD     Y5, Y4, Y4
+	VADDPD     exp10<>+0(SB), Y4, Y4
+	VMULPD     Y5, Y4, Y4
+	VADDPD     exp9<>+0(SB), Y4, Y4
+	VMULPD     Y5, Y4, Y4
+	VADDPD     exp8<>+0(SB), Y4, Y4
+	VMULPD     Y5, Y4, Y4
+	VADDPD     exp7<>+0(SB), Y4, Y4
+	VMULPD     Y5, Y4, Y4
+	VADDPD     exp6<>+0(SB), Y4, Y4
+	VMULPD     Y5, Y4, Y4
+	VADDPD     exp5<>+0(SB), Y4, Y4
+	VMULPD     Y5, Y4, Y4
+	VADDPD     exp4<>+0(SB), Y4, Y4
+	VMULPD     Y5, Y4, Y4
+	VADDPD     exp3<>+0(SB), Y4, Y4
+	VMULPD     Y5, Y4, Y4
+	VADDPD     exp2<>+0(SB), Y4, Y4
+	VMULPD     Y5, Y4, Y4
+	VMULPD     Y5, Y4, Y4
+	VADDPD     Y5, Y4, Y4
+	VADDPD     one<>+0(SB), Y4, Y4
+	VMAXPD     expLowest<>+0(SB), Y3, Y2
+	VSUBPD     Y2, Y3, Y3
+	VCVTPD2DQY Y2, X2
+	VPMOVSXDQ  X2, Y2
+	VPADDQ     expBias<>+0(SB), Y2, Y2
+	VPSLLQ     $0x34, Y2, Y2
+	VMULPD     Y2, Y4, Y4
+	VCVTPD2DQY Y3, X2
+	VPMOVSXDQ  X2, Y2
+	VPADDQ     expBias<>+0(SB), Y2, Y2
+	VPSLLQ     $0x34, Y2, Y2
+	VMULPD     Y2, Y4, Y4
+	VMULPD     (SP), Y4, Y4
+	VADDPD     128(SP), Y4, Y4
+	VMOVUPD    (CX), Y2
+	VADDPD     Y2, Y1, Y1
+	VMULPD     Y2, Y4, Y4
+	VCMPPD     $0x0d, 160(R8), Y2, Y2
+	VANDPD     Y2, Y4, Y4
+	VMOVUPD    Y4, (AX)
+	VADDPD     Y4, Y0, Y0
+	ADDQ       $0x00000020, AX
+	ADDQ       $0x00000020, CX
+	ADDQ       $0x00000020, DX
+	ADDQ       $0x00000020, SI
+	ADDQ       $0x00000020, DI
+	ADDQ       $0x00000040, BX
+	SUBQ       $0x00000004, R9
+	JMP        four
+
+fourDone:
 	VMOVUPD Y0, (R10)
 	VMOVUPD Y1, 32(R10)
 	VZEROUPPER

@@ -8,7 +8,8 @@ import (
 	. "github.com/mmcloughlin/avo/reg"
 )
 
-// likely is kernel.Likely.Weigh.
+// likely is kernel.Likely.Weigh: sixteen places at a time, whose chains of operations go
+// side by side, then four.
 func likely(c *numbers) {
 	TEXT("likelyAVX2", NOSPLIT, "func(sums, dst, mass, residual, row, extra, flat, lanes *float64, n int)")
 	Pragma("noescape")
@@ -22,58 +23,73 @@ func likely(c *numbers) {
 	Load(Param("sums"), sums)
 	VMOVUPD(Mem{Base: sums}, all)
 	VMOVUPD(Mem{Base: sums, Disp: 32}, before)
-	i := GP64()
-	XORQ(i, i)
-	at := func(of Register) Mem { return Mem{Base: of, Index: i, Scale: 8} }
-	Label("next")
-	CMPQ(i, n)
-	JGE(LabelRef("done"))
-	// |row|² of four places: sums of neighbours come in the order 0, 2, 1, 3.
-	v, w, t := YMM(), YMM(), YMM()
-	VMOVUPD(Mem{Base: row, Index: i, Scale: 8}, v)
-	VMOVUPD(Mem{Base: row, Index: i, Scale: 8, Disp: 32}, w)
-	VMULPD(v, v, v)
-	VMULPD(w, w, w)
-	VHADDPD(w, v, w)
-	VPERMPD(Imm(0b11_01_10_00), w, w)
-	VMULPD(lane(least), w, w)
-	VMOVUPD(lane(noise), v)
-	VADDPD(at(extra), v, v)
-	VMAXPD(v, w, v) // w if it is above v
-	VMOVUPD(c.one, t)
-	VDIVPD(v, t, v)
-	x, own := YMM(), YMM()
-	VMOVUPD(at(residual), x)
-	VSUBPD(lane(mean), x, x)
-	VMULPD(x, x, x)
-	VMULPD(v, x, x)
-	VMULPD(c.minusHalf, x, x)
-	VSQRTPD(v, v)
-	VMULPD(lane(weight), v, v)
-	VMOVUPD(at(flat), t)
-	VCMPPD(Imm(3), t, t, own) // flat is NaN
-	VBLENDVPD(own, x, t, x)
-	VMOVUPD(c.one, t)
-	VBLENDVPD(own, v, t, v)
-	VANDPD(lane(flatly), own, own)
-	none := YMM()
-	VCMPPD(Imm(3), x, x, none) // stays NaN
-	e, keep := c.exp(x)
-	VANDPD(keep, e, e)
-	VMULPD(v, e, e)
-	VADDPD(own, e, e)
-	VORPD(none, e, e)
-	VMOVUPD(at(mass), t)
-	VADDPD(t, before, before)
-	VMULPD(t, e, e)
-	VCMPPD(Imm(13), lane(leastMass), t, t)
-	VANDPD(t, e, e)
-	VMOVUPD(e, at(dst))
-	VADDPD(e, all, all)
-	ADDQ(Imm(4), i)
-	ADDQ(Imm(32), row) // two numbers a place
-	JMP(LabelRef("next"))
-	Label("done")
+	const most = 4
+	factors, adds := AllocLocal(32*most), AllocLocal(32*most)
+	block := func(name string, vectors int) {
+		at := func(of Register, j int) Mem { return Mem{Base: of, Disp: 32 * j} }
+		Label(name)
+		CMPQ(n, Imm(uint64(4*vectors)))
+		JB(LabelRef(name + "Done"))
+		x := make([]VecVirtual, vectors)
+		for j := range x {
+			// |row|² of four places: sums of neighbours come in the order 0, 2, 1, 3.
+			v, w, t := YMM(), YMM(), YMM()
+			VMOVUPD(at(row, 2*j), v)
+			VMOVUPD(at(row, 2*j+1), w)
+			VMULPD(v, v, v)
+			VMULPD(w, w, w)
+			VHADDPD(w, v, w)
+			VPERMPD(Imm(0b11_01_10_00), w, w)
+			VMULPD(lane(least), w, w)
+			VMOVUPD(lane(noise), v)
+			VADDPD(at(extra, j), v, v)
+			VMAXPD(v, w, v) // w if it is above v
+			VMOVUPD(c.one, t)
+			VDIVPD(v, t, v)
+			own := YMM()
+			x[j] = YMM()
+			VMOVUPD(at(residual, j), x[j])
+			VSUBPD(lane(mean), x[j], x[j])
+			VMULPD(x[j], x[j], x[j])
+			VMULPD(v, x[j], x[j])
+			VMULPD(c.minusHalf, x[j], x[j])
+			VSQRTPD(v, v)
+			VMULPD(lane(weight), v, v)
+			VMOVUPD(at(flat, j), t)
+			VCMPPD(Imm(3), t, t, own) // flat is NaN
+			VBLENDVPD(own, x[j], t, x[j])
+			VMOVUPD(c.one, t)
+			VBLENDVPD(own, v, t, v)
+			VANDPD(lane(flatly), own, own)
+			VCMPPD(Imm(3), x[j], x[j], t) // stays NaN
+			VORPD(t, own, own)
+			VMOVUPD(own, adds.Offset(32*j))
+			VCMPPD(Imm(13), c.expLeast, x[j], t) // else 0: the exponential is finite there, too
+			VANDPD(t, v, v)
+			VMOVUPD(v, factors.Offset(32*j))
+		}
+		for j, e := range c.exps(x) {
+			t := YMM()
+			VMULPD(factors.Offset(32*j), e, e)
+			VADDPD(adds.Offset(32*j), e, e)
+			VMOVUPD(at(mass, j), t)
+			VADDPD(t, before, before)
+			VMULPD(t, e, e)
+			VCMPPD(Imm(13), lane(leastMass), t, t)
+			VANDPD(t, e, e)
+			VMOVUPD(e, at(dst, j))
+			VADDPD(e, all, all)
+		}
+		for _, pointer := range []Register{dst, mass, residual, extra, flat} {
+			ADDQ(U32(32*vectors), pointer)
+		}
+		ADDQ(U32(64*vectors), row) // two numbers a place
+		SUBQ(U32(4*vectors), n)
+		JMP(LabelRef(name))
+		Label(name + "Done")
+	}
+	block("sixteen", most)
+	block("four", 1)
 	VMOVUPD(all, Mem{Base: sums})
 	VMOVUPD(before, Mem{Base: sums, Disp: 32})
 	VZEROUPPER()

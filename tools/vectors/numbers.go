@@ -55,13 +55,23 @@ func constants() *numbers {
 }
 
 // horner is the polynomial with the terms, at x.
-func horner(terms []Mem, x VecVirtual) VecVirtual {
-	p := YMM()
-	VMULPD(terms[len(terms)-1], x, p)
+func horner(terms []Mem, x VecVirtual) VecVirtual { return horners(terms, []VecVirtual{x})[0] }
+
+// horners are the polynomials with the terms at several x, side by side.
+func horners(terms []Mem, x []VecVirtual) []VecVirtual {
+	p := make([]VecVirtual, len(x))
+	for j := range p {
+		p[j] = YMM()
+		VMULPD(terms[len(terms)-1], x[j], p[j])
+	}
 	for i := len(terms) - 2; i >= 0; i-- {
-		VADDPD(terms[i], p, p)
-		if i > 0 {
-			VMULPD(x, p, p)
+		for j := range p {
+			VADDPD(terms[i], p[j], p[j])
+		}
+		for j := range p {
+			if i > 0 {
+				VMULPD(x[j], p[j], p[j])
+			}
 		}
 	}
 	return p
@@ -71,35 +81,51 @@ func horner(terms []Mem, x VecVirtual) VecVirtual {
 // keep is 0.
 func (c *numbers) exp(x VecVirtual) (e, keep VecVirtual) {
 	keep = YMM()
-	k, r, t := YMM(), YMM(), YMM()
 	VCMPPD(Imm(13), c.expLeast, x, keep) // x ≥ expLeast
-	VMAXPD(c.expClamp, x, x)
-	VMULPD(c.perLn2, x, k)
-	VADDPD(c.half, k, k)
-	VROUNDPD(Imm(9), k, k) // down
-	VMULPD(c.hi, k, t)
-	VSUBPD(t, x, r)
-	VMULPD(c.lo, k, t)
-	VSUBPD(t, r, r)
-	p := horner(c.expTerms, r)
-	VMULPD(r, p, p)
-	VMULPD(r, p, p)
-	VADDPD(r, p, p)
-	VADDPD(c.one, p, p)
+	return c.exps([]VecVirtual{x})[0], keep
+}
+
+// exps are kernel.Exp of several x ≤ 0, which are changed, side by side: wrong below
+// c.expLeast, though finite.
+func (c *numbers) exps(x []VecVirtual) []VecVirtual {
+	k, t := make([]VecVirtual, len(x)), YMM()
+	for j := range x {
+		k[j] = YMM()
+		VMAXPD(c.expClamp, x[j], x[j])
+		VMULPD(c.perLn2, x[j], k[j])
+		VADDPD(c.half, k[j], k[j])
+		VROUNDPD(Imm(9), k[j], k[j]) // down
+		VMULPD(c.hi, k[j], t)
+		VSUBPD(t, x[j], x[j])
+		VMULPD(c.lo, k[j], t)
+		VSUBPD(t, x[j], x[j])
+	}
+	p := horners(c.expTerms, x)
+	for range 2 {
+		for j := range p {
+			VMULPD(x[j], p[j], p[j])
+		}
+	}
+	for j := range p {
+		VADDPD(x[j], p[j], p[j])
+		VADDPD(c.one, p[j], p[j])
+	}
 	// Times 2^k in two steps, the second one other than 1 where the result is
 	// denormal.
-	a := YMM()
-	VMAXPD(c.expLowest, k, a)
-	VSUBPD(a, k, k)
-	for _, by := range []VecVirtual{a, k} {
-		whole := XMM()
-		VCVTPD2DQY(by, whole)
-		VPMOVSXDQ(whole, t)
-		VPADDQ(c.bias, t, t)
-		VPSLLQ(Imm(52), t, t)
-		VMULPD(t, p, p)
+	for j := range p {
+		a := YMM()
+		VMAXPD(c.expLowest, k[j], a)
+		VSUBPD(a, k[j], k[j])
+		for _, by := range []VecVirtual{a, k[j]} {
+			whole := XMM()
+			VCVTPD2DQY(by, whole)
+			VPMOVSXDQ(whole, t)
+			VPADDQ(c.bias, t, t)
+			VPSLLQ(Imm(52), t, t)
+			VMULPD(t, p[j], p[j])
+		}
 	}
-	return p, keep
+	return p
 }
 
 // log is kernel.Log of x > 0, normal and finite.
