@@ -90,8 +90,11 @@ func (v voice) factor(name string, p part, f float64, measured bool, remedy stri
 		Name: name, Sensor: v.sensor, Remedy: remedy, of: v.is,
 		mend: func(m sensor.Measurement) sensor.Measurement { return times(m, p, f) },
 	}
+	ln := kernel.Log(math.Abs(f))
+	if f > 0 {
+		m.lnFactor = ln
+	}
 	if measured {
-		ln := kernel.Log(math.Abs(f))
 		m.lnScale = func(sensor.Measurement) float64 { return ln }
 	}
 	return m

@@ -107,6 +107,40 @@ func TestFindsPlantedMistakes(t *testing.T) {
 	}
 }
 
+// TestFactorsNearAUnit: a factor that fits better speaks against a unit, but not where
+// it is the unit's to within what a sensor's own scale may be off: then the unit is
+// named, and what is left of it said.
+func TestFactorsNearAUnit(t *testing.T) {
+	vs := voices([]sensor.Event{{Sensor: "odo", Measurement: sensor.Travel{}}})
+	all := catalogue(vs)
+	feet := &all[slices.IndexFunc(all, func(m Mistake) bool { return m.Name == "distances in feet, taken as metres" })]
+	s := &factorScans(vs, sensor.Default(1))[0]
+	for _, c := range []struct {
+		factor, gain float64 // beyond the unit's
+		named        bool
+		says         string
+	}{
+		{0.317, 40, true, "a factor of 1.04"},
+		{0.3048 * 0.95, 40, true, "a factor of 0.95"},
+		{0.317, 2, true, "multiply by 0.3048"},
+		{0.33, 40, false, "×0.33"},
+		{0.28, 40, false, "×0.28"},
+		{0.33, 2, true, "multiply by 0.3048"},
+	} {
+		free := s.named(math.Log(c.factor), 0)
+		r := &Report{NeededNats: needed(100), Candidates: []Candidate{
+			{GainNats: 200, eligible: true, Remedy: feet.Remedy, mistake: feet},
+			{GainNats: 200 + c.gain, eligible: true, Value: c.factor, mistake: &free},
+		}}
+		r.challenge()
+		r.judge()
+		named := slices.ContainsFunc(r.Candidates, func(k Candidate) bool { return k.Named })
+		if named != c.named || !strings.Contains(r.Verdict, c.says) {
+			t.Errorf("×%g by %g nats: %s", c.factor, c.gain, r.Verdict)
+		}
+	}
+}
+
 // TestNamesNothingUnspoiled: in logs without a mistake none is named.
 func TestNamesNothingUnspoiled(t *testing.T) {
 	seeds := 1

@@ -28,6 +28,10 @@ type Mistake struct {
 	// lnScale is ln |∂mended/∂recorded| of a measurement that is weighed.
 	lnScale func(mended sensor.Measurement) float64
 
+	// lnFactor is the logarithm of what numbers are multiplied by; 0 where that is
+	// not what it is.
+	lnFactor float64
+
 	// family is what differs in Value alone; search how that was found, nil if
 	// it was not searched for.
 	family string

@@ -157,6 +157,7 @@ var plants = []plant{
 		name: "flight: grid north", scene: flyer, shortS: 30, want: "directions from grid north (invented)", value: gridDeg, within: 0.1, grid: &invented,
 		spoil: each(func(m *sensor.Displacement) { m.EastM, m.NorthM = rotate(m.EastM, m.NorthM, gridDeg) }),
 	},
+	{name: "car: feet, and wheels 4 % larger than said", scene: fittedCar, spoil: each(func(m *sensor.Travel) { m.DistanceM /= 0.3048 * 1.04 }), want: "distances in feet, taken as metres"},
 }
 
 // invented is a grid whose central meridian is far to the west.

@@ -57,7 +57,8 @@ func (r *Report) judge() {
 // in 1.4 % of logs.
 const challengeNats = 3.0
 
-// challenge holds against a unit that a factor between the units fits better, or
+// challenge holds against a unit that a factor between the units fits better, unless
+// it is that unit's but for the sensor's own scale (nearUnit), or
 // against an offset of depths that a factor does, and against that factor that it
 // is no unit: it is there to challenge others, and so many would fit this or that
 // log that it is not named itself. Of an offset that it fits about as well as, the
@@ -74,6 +75,8 @@ func (r *Report) challenge() {
 			k := &r.Candidates[j]
 			switch behind := f.GainNats - k.GainNats; {
 			case !s.challenges(k.mistake) || f.GivenUpAfter != nil:
+			case behind > challengeNats && s.nearUnit(k.mistake, f.mistake):
+				k.Remedy += fmt.Sprintf("; what is then left, a factor of %.3g, is as little as the sensor's own scale may be off", kernel.Exp(f.mistake.Value-k.mistake.lnFactor))
 			case behind > challengeNats:
 				k.Suspect = append(k.Suspect, fmt.Sprintf("a factor of no usual unit, ×%.3g, fits better", f.Value))
 			case behind > -logOdds && k.mistake.search != nil: // neither is more usual than the other
@@ -81,6 +84,16 @@ func (r *Report) challenge() {
 			}
 		}
 	}
+}
+
+// nearUnit reports whether a factor that was searched for is that of a unit, but for
+// as little as sensors are off by themselves. A unit that is mistaken by a sensor
+// whose scale is off as well is the likelier story, however many nats that scale
+// brings: by Bayes' rule the unit is one of a few, and the scale lies within some 3 %
+// of one (practice), while a factor of no unit may lie anywhere within the search's
+// reach, some eighty times as wide.
+func (s *scan) nearUnit(unit, factor *Mistake) bool {
+	return unit.lnFactor != 0 && unit.family == s.family && math.Abs(factor.Value-unit.lnFactor) < s.least
 }
 
 // explains reports whether a log with a mistake undone is one that nothing
