@@ -187,7 +187,12 @@ func (c *Context) point(p geo.LonLat, what string) (geo.Point, error) {
 	q := c.Frame.Forward(p)
 	if !geo.Finite(q.E, q.N) || q.Norm() > maxFarM {
 		lon, lat := p.Degrees()
-		return q, fmt.Errorf("%s at lon %v, lat %v is more than %v km from the map's middle: check the position and the map", what, lon, lat, maxFarM/1000)
+		remedy := "check the position and the map"
+		swapped := geo.LonLat{Lon: p.Lat, Lat: p.Lon}
+		if other := c.Frame.Forward(swapped); swapped.Check() == nil && other.Norm() < maxFarM/10 {
+			remedy = fmt.Sprintf("with its longitude and latitude swapped it would be %.0f km from there", other.Norm()/1000)
+		}
+		return q, fmt.Errorf("%s at lon %v, lat %v is more than %v km from the map's middle: %s", what, lon, lat, maxFarM/1000, remedy)
 	}
 	return q, nil
 }

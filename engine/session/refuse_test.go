@@ -66,6 +66,8 @@ func TestRefusals(t *testing.T) {
 		{"inside", onRoad, travel(9.92, 9.98, 0.5, 0.05), Conflicting, []string{"0.060 s"}},
 		{"around", onRoad, travel(8.5, 10.5, 0.5, 0.05), Conflicting, []string{"by another one"}},
 		{"early", onRoad, fixAt(11+86401, "other"), TooEarly, []string{"86401 s ahead", "check the sensor's clock"}},
+		{"swapped", onWater, of(sensor.Fix{Position: geo.FromDegrees(50.01, 10), SigmaM: 3}), Unusable, []string{"lon 50.01", "from the map's middle", "longitude and latitude swapped", "1 km from there"}},
+		{"on another continent", onWater, of(sensor.Fix{Position: geo.FromDegrees(-70, -20), SigmaM: 3}), Unusable, []string{"from the map's middle: check the position and the map"}},
 		{"heading on water", onWater, of(sensor.HeadingFix{HeadingRad: 1, SigmaRad: 0.1}), WrongSpace, []string{"heading", "suite"}},
 		{"travel on water", onWater, of(sensor.Travel{Since: at(10), DistanceM: 1, SigmaM: 1}), WrongSpace, []string{"travel", "declare the sensor"}},
 		{"barometer on water", onWater, of(sensor.Barometer{AltitudeM: 1, SigmaM: 1}), WrongSpace, []string{"barometer", "clearance"}},

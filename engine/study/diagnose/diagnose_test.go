@@ -141,6 +141,24 @@ func TestFactorsNearAUnit(t *testing.T) {
 	}
 }
 
+// TestKeepsWhoHasNotBegun: a mistake of which nothing has come yet is the log as it
+// stands, and is not given up before that is.
+func TestKeepsWhoHasNotBegun(t *testing.T) {
+	of := func(string, string) bool { return true }
+	one := func(begun bool, nats float64) *entrant {
+		return &entrant{mistake: &Mistake{of: of}, run: &run{begun: begun}, nats: []float64{nats}}
+	}
+	log := &entrant{mistake: &Mistake{}, run: &run{}, nats: []float64{-100}}
+	best, late, behind := one(true, 0), one(false, -100), one(true, -100)
+	if got := keep([]*entrant{log, best, late, behind}); !slices.Equal(got, []*entrant{log, best, late}) {
+		t.Errorf("%d of four are kept", len(got))
+	}
+	log.nats[0], late.nats[0] = -301, -301
+	if got := keep([]*entrant{log, best, late}); !slices.Equal(got, []*entrant{best}) {
+		t.Errorf("%d of three are kept", len(got))
+	}
+}
+
 // TestNamesNothingUnspoiled: in logs without a mistake none is named.
 func TestNamesNothingUnspoiled(t *testing.T) {
 	seeds := 1

@@ -50,7 +50,8 @@ func (e *entrant) last() float64 { return e.nats[len(e.nats)-1] }
 // model is not the world, and so it is twice that.
 //
 // farNats is the same for the log as it stands, which the others are compared
-// with, and for the best of a family that is searched for a value, which its
+// with, for a mistake of which nothing has come yet (the first fix after minutes),
+// which is that log so far, and for the best of a family that is searched for a value, which its
 // finer values go on from. What stands for its neighbours is allowed what that
 // may have cost it.
 const (
@@ -164,7 +165,7 @@ func keep(es []*entrant) []*entrant {
 			continue
 		}
 		behind := behindNats
-		if e.isLog() || of[e.mistake.family] == e {
+		if !e.run.begun || of[e.mistake.family] == e {
 			behind = farNats
 		}
 		if s := e.mistake.search; s != nil && s.broadens() {

@@ -20,6 +20,7 @@ type run struct {
 	log     Record
 	refused float64 // nats of measurements that were refused
 	motions int     // refused ones
+	begun   bool    // something was mended: until then it is the log as it stands
 	// refusedOf counts what was refused, by sensor in the order of the first.
 	refusedOf []refusedSensor
 	outcomes  outcomes
@@ -75,6 +76,7 @@ func (r *run) advance(until sensor.Time, end bool, most float64, stop func() err
 			return err
 		}
 		ev := r.events[r.next]
+		r.begun = r.begun || r.mistake.of != nil && r.mistake.of(ev.Sensor, ev.Measurement.Kind())
 		ps, err := r.s.Add(ev)
 		r.outcomes.take(ps, r.s.Withdrawn())
 		var ref *session.Refusal
