@@ -159,7 +159,7 @@ func TestBlockBits(t *testing.T) {
 	const seed = 9
 	rng := rand.New(rand.NewPCG(seed, 1))
 	for range 500 {
-		cols, rows := rng.IntN(20), rng.IntN(6)
+		cols, rows := rng.IntN(60), rng.IntN(6)
 		to, from := cols+rng.IntN(5), cols+rng.IntN(5)
 		src := someCells(rng, rows*from+rng.IntN(9))
 		got := someCells(rng, rows*to+rng.IntN(9))

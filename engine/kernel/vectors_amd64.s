@@ -904,20 +904,37 @@ TEXT ·copyBlockAVX2(SB), NOSPLIT, $0-48
 	MOVQ rows+24(FP), BX
 	MOVQ to+32(FP), SI
 	MOVQ from+40(FP), DI
-	MOVQ DX, R9
-	ANDQ $-4, R9
 
 row:
 	XORQ R8, R8
+	MOVQ DX, R9
 
+sixteen:
+	CMPQ    R9, $0x10
+	JB      sixteenDone
+	VMOVUPD (CX)(R8*8), Y0
+	VMOVUPD 32(CX)(R8*8), Y1
+	VMOVUPD 64(CX)(R8*8), Y2
+	VMOVUPD 96(CX)(R8*8), Y3
+	VMOVUPD Y0, (AX)(R8*8)
+	VMOVUPD Y1, 32(AX)(R8*8)
+	VMOVUPD Y2, 64(AX)(R8*8)
+	VMOVUPD Y3, 96(AX)(R8*8)
+	ADDQ    $0x10, R8
+	SUBQ    $0x10, R9
+	JMP     sixteen
+
+sixteenDone:
 four:
-	CMPQ    R8, R9
-	JGE     one
+	CMPQ    R9, $0x04
+	JB      fourDone
 	VMOVUPD (CX)(R8*8), Y0
 	VMOVUPD Y0, (AX)(R8*8)
 	ADDQ    $0x04, R8
+	SUBQ    $0x04, R9
 	JMP     four
 
+fourDone:
 one:
 	CMPQ   R8, DX
 	JGE    next

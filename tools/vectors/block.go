@@ -8,7 +8,7 @@ import (
 	. "github.com/mmcloughlin/avo/reg"
 )
 
-// copyBlock is kernel.CopyBlock: four at a time, then one.
+// copyBlock is kernel.CopyBlock: sixteen at a time, then four, then one.
 func copyBlock() {
 	TEXT("copyBlockAVX2", NOSPLIT, "func(dst, src *float64, cols, rows, to, from int)")
 	Pragma("noescape")
@@ -16,19 +16,28 @@ func copyBlock() {
 	dst, src := Load(Param("dst"), GP64()), Load(Param("src"), GP64())
 	cols, rows := Load(Param("cols"), GP64()), Load(Param("rows"), GP64())
 	to, from := Load(Param("to"), GP64()), Load(Param("from"), GP64())
-	i, whole := GP64(), GP64()
-	MOVQ(cols, whole)
-	ANDQ(I8(-4), whole)
-	a, b := YMM(), XMM()
+	i, left := GP64(), GP64()
+	a, b := []VecVirtual{YMM(), YMM(), YMM(), YMM()}, XMM()
 	Label("row")
 	XORQ(i, i)
-	Label("four")
-	CMPQ(i, whole)
-	JGE(LabelRef("one"))
-	VMOVUPD(Mem{Base: src, Index: i, Scale: 8}, a)
-	VMOVUPD(a, Mem{Base: dst, Index: i, Scale: 8})
-	ADDQ(Imm(4), i)
-	JMP(LabelRef("four"))
+	MOVQ(cols, left)
+	block := func(name string, vectors int) {
+		Label(name)
+		CMPQ(left, Imm(uint64(4*vectors)))
+		JB(LabelRef(name + "Done"))
+		for j := range vectors {
+			VMOVUPD(Mem{Base: src, Index: i, Scale: 8, Disp: 32 * j}, a[j])
+		}
+		for j := range vectors {
+			VMOVUPD(a[j], Mem{Base: dst, Index: i, Scale: 8, Disp: 32 * j})
+		}
+		ADDQ(Imm(uint64(4*vectors)), i)
+		SUBQ(Imm(uint64(4*vectors)), left)
+		JMP(LabelRef(name))
+		Label(name + "Done")
+	}
+	block("sixteen", 4)
+	block("four", 1)
 	Label("one")
 	CMPQ(i, cols)
 	JGE(LabelRef("next"))
