@@ -2092,63 +2092,59 @@ next:
 	VPSHUFD     $0x00, X8, X8
 	VPMULLD     X8, X0, X0
 	VPADDD      X9, X0, X0
-	VPEXTRD     $0x00, X0, R11
-	VPEXTRD     $0x01, X0, R12
-	VMOVSD      (R8)(R11*4), X1
-	VMOVHPS     (R8)(R12*4), X1, X1
-	VPEXTRD     $0x02, X0, R11
-	VPEXTRD     $0x03, X0, R12
-	VMOVSD      (R8)(R11*4), X2
-	VMOVHPS     (R8)(R12*4), X2, X2
-	VSHUFPS     $0x88, X2, X1, X7
-	VCVTPS2PD   X7, Y8
-	VSHUFPS     $0xdd, X2, X1, X7
-	VCVTPS2PD   X7, Y1
-	VSUBPD      Y8, Y1, Y1
-	LEAQ        (R8)(R9*4), R13
-	VPEXTRD     $0x00, X0, R11
-	VPEXTRD     $0x01, X0, R12
-	VMOVSD      (R13)(R11*4), X2
-	VMOVHPS     (R13)(R12*4), X2, X2
-	VPEXTRD     $0x02, X0, R11
-	VPEXTRD     $0x03, X0, R12
-	VMOVSD      (R13)(R11*4), X0
-	VMOVHPS     (R13)(R12*4), X0, X0
-	VSHUFPS     $0x88, X0, X2, X7
-	VCVTPS2PD   X7, Y9
-	VSHUFPS     $0xdd, X0, X2, X7
-	VCVTPS2PD   X7, Y0
+	LEAQ        (R8)(R9*4), R11
+	VPEXTRD     $0x00, X0, R12
+	VPEXTRD     $0x01, X0, R13
+	VMOVSD      (R8)(R12*4), X1
+	VMOVHPS     (R8)(R13*4), X1, X1
+	VMOVSD      (R11)(R12*4), X2
+	VMOVHPS     (R11)(R13*4), X2, X2
+	VPEXTRD     $0x02, X0, R12
+	VPEXTRD     $0x03, X0, R13
+	VMOVSD      (R8)(R12*4), X0
+	VMOVHPS     (R8)(R13*4), X0, X0
+	VMOVSD      (R11)(R12*4), X7
+	VMOVHPS     (R11)(R13*4), X7, X7
+	VSHUFPS     $0x88, X0, X1, X8
+	VCVTPS2PD   X8, Y9
+	VSHUFPS     $0xdd, X0, X1, X8
+	VCVTPS2PD   X8, Y0
 	VSUBPD      Y9, Y0, Y0
-	VSUBPD      Y1, Y0, Y0
-	VSUBPD      Y8, Y9, Y9
-	VMULPD      Y1, Y3, Y2
-	VADDPD      Y2, Y8, Y8
-	VMULPD      Y9, Y10, Y2
-	VADDPD      Y2, Y8, Y8
-	VMULPD      Y10, Y3, Y2
-	VMULPD      Y0, Y2, Y2
-	VADDPD      Y2, Y8, Y8
-	VCMPPD      $0x00, Y8, Y8, Y2
-	VANDPD      Y2, Y6, Y6
-	VMULPD      Y0, Y10, Y2
-	VADDPD      Y2, Y1, Y1
-	VMULPD      64(DI), Y1, Y1
+	VSHUFPS     $0x88, X7, X2, X1
+	VCVTPS2PD   X1, Y8
+	VSHUFPS     $0xdd, X7, X2, X1
+	VCVTPS2PD   X1, Y1
+	VSUBPD      Y8, Y1, Y1
+	VSUBPD      Y0, Y1, Y1
+	VSUBPD      Y9, Y8, Y8
 	VMULPD      Y0, Y3, Y2
 	VADDPD      Y2, Y9, Y9
-	VMULPD      64(DI), Y9, Y9
-	VMULPD      Y4, Y1, Y4
-	VMULPD      Y11, Y9, Y11
+	VMULPD      Y8, Y10, Y2
+	VADDPD      Y2, Y9, Y9
+	VMULPD      Y10, Y3, Y2
+	VMULPD      Y1, Y2, Y2
+	VADDPD      Y2, Y9, Y9
+	VCMPPD      $0x00, Y9, Y9, Y2
+	VANDPD      Y2, Y6, Y6
+	VMULPD      Y1, Y10, Y2
+	VADDPD      Y2, Y0, Y0
+	VMULPD      64(DI), Y0, Y0
+	VMULPD      Y1, Y3, Y2
+	VADDPD      Y2, Y8, Y8
+	VMULPD      64(DI), Y8, Y8
+	VMULPD      Y4, Y0, Y4
+	VMULPD      Y11, Y8, Y11
 	VADDPD      Y11, Y4, Y4
 	VANDPD      Y6, Y4, Y4
 	VMOVUPD     Y4, (CX)(R10*8)
-	VMULPD      Y5, Y1, Y5
-	VMULPD      Y12, Y9, Y12
+	VMULPD      Y5, Y0, Y5
+	VMULPD      Y12, Y8, Y12
 	VADDPD      Y12, Y5, Y5
 	VANDPD      Y6, Y5, Y5
 	VMOVUPD     Y5, (DX)(R10*8)
 	VMOVUPD     unknown<>+0(SB), Y2
-	VBLENDVPD   Y6, Y8, Y2, Y8
-	VMOVUPD     Y8, (AX)(R10*8)
+	VBLENDVPD   Y6, Y9, Y2, Y9
+	VMOVUPD     Y9, (AX)(R10*8)
 	ADDQ        $0x04, R10
 	JMP         next
 
@@ -2159,7 +2155,7 @@ done:
 
 // func sampleRowAVX2(height *float64, slopeE *float64, slopeN *float64, east *float64, numbers *float64, heights *float32, n int, cols int, lastRow int) (done int)
 // Requires: AVX
-TEXT ·sampleRowAVX2(SB), NOSPLIT, $0-80
+TEXT ·sampleRowAVX2(SB), NOSPLIT, $576-80
 	MOVQ height+0(FP), AX
 	MOVQ slopeE+8(FP), CX
 	MOVQ slopeN+16(FP), DX
@@ -2168,158 +2164,703 @@ TEXT ·sampleRowAVX2(SB), NOSPLIT, $0-80
 	MOVQ heights+40(FP), DI
 	MOVQ cols+56(FP), R8
 	XORQ R9, R9
+	MOVQ n+48(FP), R11
+	MOVQ lastRow+64(FP), R13
+	LEAQ -2(R8), R12
 
-next:
-	MOVQ         n+48(FP), R10
-	CMPQ         R9, R10
-	JGE          done
-	VMOVUPD      (BX)(R9*8), Y0
-	VBROADCASTSD (SI), Y1
-	VSUBPD       Y1, Y0, Y0
-	VBROADCASTSD 8(SI), Y1
-	VMULPD       Y1, Y0, Y0
-	VBROADCASTSD 16(SI), Y1
-	VCMPPD       $0x1d, Y1, Y0, Y1
-	VBROADCASTSD 24(SI), Y2
-	VCMPPD       $0x11, Y2, Y0, Y2
-	VANDPD       Y2, Y1, Y1
-	VBROADCASTSD 16(SI), Y2
-	VSUBPD       Y2, Y0, Y0
-	VMOVMSKPD    Y1, R10
+sixteen:
+	LEAQ         16(R9), R14
+	CMPQ         R14, R11
+	JG           sixteenDone
+	VMOVUPD      (BX)(R9*8), Y2
+	VMOVUPD      32(BX)(R9*8), Y3
+	VMOVUPD      64(BX)(R9*8), Y4
+	VMOVUPD      96(BX)(R9*8), Y5
+	VBROADCASTSD (SI), Y0
+	VSUBPD       Y0, Y2, Y2
+	VSUBPD       Y0, Y3, Y3
+	VSUBPD       Y0, Y4, Y4
+	VSUBPD       Y0, Y5, Y5
+	VBROADCASTSD 8(SI), Y0
+	VMULPD       Y0, Y2, Y2
+	VMULPD       Y0, Y3, Y3
+	VMULPD       Y0, Y4, Y4
+	VMULPD       Y0, Y5, Y5
+	VBROADCASTSD 24(SI), Y6
+	VCMPPD       $0x11, Y6, Y2, Y0
+	VCMPPD       $0x11, Y6, Y3, Y1
+	VANDPD       Y1, Y0, Y0
+	VCMPPD       $0x11, Y6, Y4, Y1
+	VANDPD       Y1, Y0, Y0
+	VCMPPD       $0x11, Y6, Y5, Y1
+	VANDPD       Y1, Y0, Y0
+	VBROADCASTSD 16(SI), Y6
+	VCMPPD       $0x1d, Y6, Y2, Y1
+	VANDPD       Y1, Y0, Y0
+	VSUBPD       Y6, Y2, Y2
+	VCMPPD       $0x1d, Y6, Y3, Y1
+	VANDPD       Y1, Y0, Y0
+	VSUBPD       Y6, Y3, Y3
+	VCMPPD       $0x1d, Y6, Y4, Y1
+	VANDPD       Y1, Y0, Y0
+	VSUBPD       Y6, Y4, Y4
+	VCMPPD       $0x1d, Y6, Y5, Y1
+	VANDPD       Y1, Y0, Y0
+	VSUBPD       Y6, Y5, Y5
+	VMOVMSKPD    Y0, R10
 	CMPL         R10, $0x0f
-	JNE          done
+	JNE          sixteenDone
+	VMOVUPD      Y2, (SP)
+	VMOVUPD      Y3, 32(SP)
+	VMOVUPD      Y4, 64(SP)
+	VMOVUPD      Y5, 96(SP)
+	VPXOR        X11, X11, X11
 	VBROADCASTSD 80(SI), Y1
-	VMULPD       Y1, Y0, Y1
-	VBROADCASTSD 72(SI), Y2
-	VADDPD       Y2, Y1, Y1
-	VMULPD       Y1, Y0, Y1
-	VBROADCASTSD 64(SI), Y2
-	VADDPD       Y2, Y1, Y1
-	VBROADCASTSD 112(SI), Y2
-	VMULPD       Y2, Y0, Y3
-	VBROADCASTSD 104(SI), Y2
-	VADDPD       Y2, Y3, Y3
-	VMULPD       Y3, Y0, Y3
-	VBROADCASTSD 96(SI), Y2
-	VADDPD       Y2, Y3, Y3
-	VBROADCASTSD 88(SI), Y2
-	VMULPD       Y2, Y0, Y2
-	VBROADCASTSD 72(SI), Y4
-	VADDPD       Y4, Y2, Y2
-	VBROADCASTSD 32(SI), Y4
-	VCMPPD       $0x1d, Y4, Y1, Y5
-	VMOVAPD      Y5, Y4
-	VBROADCASTSD 40(SI), Y5
-	VCMPPD       $0x12, Y5, Y1, Y5
-	VANDPD       Y5, Y4, Y4
-	VPXOR        X5, X5, X5
-	LEAQ         -2(R8), R10
-	VMOVD        R10, X6
-	VPSHUFD      $0x00, X6, X6
-	VCVTTPD2DQY  Y1, X7
-	VPMINSD      X6, X7, X7
-	VPMAXSD      X5, X7, X7
-	VCVTDQ2PD    X7, Y6
-	VSUBPD       Y6, Y1, Y1
-	VBROADCASTSD 136(SI), Y6
-	VMULPD       Y6, Y0, Y8
-	VBROADCASTSD 128(SI), Y6
-	VADDPD       Y6, Y8, Y8
-	VMULPD       Y8, Y0, Y8
-	VBROADCASTSD 120(SI), Y6
-	VADDPD       Y6, Y8, Y8
-	VBROADCASTSD 168(SI), Y6
-	VMULPD       Y6, Y0, Y9
-	VBROADCASTSD 160(SI), Y6
-	VADDPD       Y6, Y9, Y9
-	VMULPD       Y9, Y0, Y9
-	VBROADCASTSD 152(SI), Y6
-	VADDPD       Y6, Y9, Y9
-	VBROADCASTSD 144(SI), Y6
-	VMULPD       Y6, Y0, Y0
-	VBROADCASTSD 128(SI), Y6
-	VADDPD       Y6, Y0, Y0
-	VBROADCASTSD 48(SI), Y6
-	VCMPPD       $0x1d, Y6, Y8, Y6
-	VANDPD       Y6, Y4, Y4
-	VBROADCASTSD 56(SI), Y6
-	VCMPPD       $0x12, Y6, Y8, Y6
-	VANDPD       Y6, Y4, Y4
-	MOVQ         lastRow+64(FP), R10
-	VMOVD        R10, X6
-	VPSHUFD      $0x00, X6, X6
-	VCVTTPD2DQY  Y8, X10
-	VPMINSD      X6, X10, X10
-	VPMAXSD      X5, X10, X10
-	VCVTDQ2PD    X10, Y5
-	VSUBPD       Y5, Y8, Y8
-	VMOVD        R8, X6
-	VPSHUFD      $0x00, X6, X6
-	VPMULLD      X6, X10, X10
-	VPADDD       X7, X10, X10
-	VPEXTRD      $0x00, X10, R10
-	VPEXTRD      $0x01, X10, R11
-	VMOVSD       (DI)(R10*4), X5
-	VMOVHPS      (DI)(R11*4), X5, X5
-	VPEXTRD      $0x02, X10, R10
-	VPEXTRD      $0x03, X10, R11
-	VMOVSD       (DI)(R10*4), X6
-	VMOVHPS      (DI)(R11*4), X6, X6
-	VSHUFPS      $0x88, X6, X5, X7
-	VCVTPS2PD    X7, Y11
-	VSHUFPS      $0xdd, X6, X5, X7
-	VCVTPS2PD    X7, Y5
-	VSUBPD       Y11, Y5, Y5
-	LEAQ         (DI)(R8*4), R12
-	VPEXTRD      $0x00, X10, R10
-	VPEXTRD      $0x01, X10, R11
-	VMOVSD       (R12)(R10*4), X6
-	VMOVHPS      (R12)(R11*4), X6, X6
-	VPEXTRD      $0x02, X10, R10
-	VPEXTRD      $0x03, X10, R11
-	VMOVSD       (R12)(R10*4), X7
-	VMOVHPS      (R12)(R11*4), X7, X7
-	VSHUFPS      $0x88, X7, X6, X10
-	VCVTPS2PD    X10, Y12
-	VSHUFPS      $0xdd, X7, X6, X10
-	VCVTPS2PD    X10, Y6
-	VSUBPD       Y12, Y6, Y6
-	VSUBPD       Y5, Y6, Y6
-	VSUBPD       Y11, Y12, Y12
-	VMULPD       Y5, Y1, Y7
-	VADDPD       Y7, Y11, Y11
-	VMULPD       Y12, Y8, Y7
-	VADDPD       Y7, Y11, Y11
-	VMULPD       Y8, Y1, Y7
-	VMULPD       Y6, Y7, Y7
-	VADDPD       Y7, Y11, Y11
-	VCMPPD       $0x00, Y11, Y11, Y7
-	VANDPD       Y7, Y4, Y4
-	VMULPD       Y6, Y8, Y7
-	VADDPD       Y7, Y5, Y5
-	VBROADCASTSD 8(SI), Y7
-	VMULPD       Y7, Y5, Y5
-	VMULPD       Y6, Y1, Y7
-	VADDPD       Y7, Y12, Y12
+	VMULPD       Y1, Y2, Y0
+	VMULPD       Y1, Y3, Y6
+	VMULPD       Y1, Y4, Y7
+	VMULPD       Y1, Y5, Y8
+	VBROADCASTSD 72(SI), Y1
+	VADDPD       Y1, Y0, Y0
+	VMULPD       Y0, Y2, Y0
+	VADDPD       Y1, Y6, Y6
+	VMULPD       Y6, Y3, Y6
+	VADDPD       Y1, Y7, Y7
+	VMULPD       Y7, Y4, Y7
+	VADDPD       Y1, Y8, Y8
+	VMULPD       Y8, Y5, Y8
+	VBROADCASTSD 64(SI), Y1
+	VADDPD       Y1, Y0, Y0
+	VADDPD       Y1, Y6, Y6
+	VADDPD       Y1, Y7, Y7
+	VADDPD       Y1, Y8, Y8
+	VBROADCASTSD 32(SI), Y9
+	VCMPPD       $0x1d, Y9, Y0, Y1
+	VMOVUPD      Y1, 384(SP)
+	VCMPPD       $0x1d, Y9, Y6, Y1
+	VMOVUPD      Y1, 416(SP)
+	VCMPPD       $0x1d, Y9, Y7, Y1
+	VMOVUPD      Y1, 448(SP)
+	VCMPPD       $0x1d, Y9, Y8, Y1
+	VMOVUPD      Y1, 480(SP)
+	VBROADCASTSD 40(SI), Y9
+	VCMPPD       $0x12, Y9, Y0, Y1
+	VANDPD       384(SP), Y1, Y1
+	VMOVUPD      Y1, 384(SP)
+	VCMPPD       $0x12, Y9, Y6, Y1
+	VANDPD       416(SP), Y1, Y1
+	VMOVUPD      Y1, 416(SP)
+	VCMPPD       $0x12, Y9, Y7, Y1
+	VANDPD       448(SP), Y1, Y1
+	VMOVUPD      Y1, 448(SP)
+	VCMPPD       $0x12, Y9, Y8, Y1
+	VANDPD       480(SP), Y1, Y1
+	VMOVUPD      Y1, 480(SP)
+	VMOVD        R12, X10
+	VPSHUFD      $0x00, X10, X10
+	VCVTTPD2DQY  Y0, X9
+	VPMINSD      X10, X9, X9
+	VPMAXSD      X11, X9, X9
+	VCVTDQ2PD    X9, Y1
+	VSUBPD       Y1, Y0, Y0
+	VMOVUPD      Y0, 128(SP)
+	VMOVDQU      X9, 512(SP)
+	VCVTTPD2DQY  Y6, X9
+	VPMINSD      X10, X9, X9
+	VPMAXSD      X11, X9, X9
+	VCVTDQ2PD    X9, Y1
+	VSUBPD       Y1, Y6, Y6
+	VMOVUPD      Y6, 160(SP)
+	VMOVDQU      X9, 528(SP)
+	VCVTTPD2DQY  Y7, X9
+	VPMINSD      X10, X9, X9
+	VPMAXSD      X11, X9, X9
+	VCVTDQ2PD    X9, Y1
+	VSUBPD       Y1, Y7, Y7
+	VMOVUPD      Y7, 192(SP)
+	VMOVDQU      X9, 544(SP)
+	VCVTTPD2DQY  Y8, X9
+	VPMINSD      X10, X9, X9
+	VPMAXSD      X11, X9, X9
+	VCVTDQ2PD    X9, Y1
+	VSUBPD       Y1, Y8, Y8
+	VMOVUPD      Y8, 224(SP)
+	VMOVDQU      X9, 560(SP)
+	VBROADCASTSD 136(SI), Y1
+	VMULPD       Y1, Y2, Y0
+	VMULPD       Y1, Y3, Y6
+	VMULPD       Y1, Y4, Y7
+	VMULPD       Y1, Y5, Y8
+	VBROADCASTSD 128(SI), Y1
+	VADDPD       Y1, Y0, Y0
+	VMULPD       Y0, Y2, Y0
+	VADDPD       Y1, Y6, Y6
+	VMULPD       Y6, Y3, Y6
+	VADDPD       Y1, Y7, Y7
+	VMULPD       Y7, Y4, Y7
+	VADDPD       Y1, Y8, Y8
+	VMULPD       Y8, Y5, Y8
+	VBROADCASTSD 120(SI), Y1
+	VADDPD       Y1, Y0, Y0
+	VADDPD       Y1, Y6, Y6
+	VADDPD       Y1, Y7, Y7
+	VADDPD       Y1, Y8, Y8
+	VBROADCASTSD 48(SI), Y2
+	VCMPPD       $0x1d, Y2, Y0, Y1
+	VANDPD       384(SP), Y1, Y1
+	VMOVUPD      Y1, 384(SP)
+	VCMPPD       $0x1d, Y2, Y6, Y1
+	VANDPD       416(SP), Y1, Y1
+	VMOVUPD      Y1, 416(SP)
+	VCMPPD       $0x1d, Y2, Y7, Y1
+	VANDPD       448(SP), Y1, Y1
+	VMOVUPD      Y1, 448(SP)
+	VCMPPD       $0x1d, Y2, Y8, Y1
+	VANDPD       480(SP), Y1, Y1
+	VMOVUPD      Y1, 480(SP)
+	VBROADCASTSD 56(SI), Y2
+	VCMPPD       $0x12, Y2, Y0, Y1
+	VANDPD       384(SP), Y1, Y1
+	VMOVUPD      Y1, 384(SP)
+	VCMPPD       $0x12, Y2, Y6, Y1
+	VANDPD       416(SP), Y1, Y1
+	VMOVUPD      Y1, 416(SP)
+	VCMPPD       $0x12, Y2, Y7, Y1
+	VANDPD       448(SP), Y1, Y1
+	VMOVUPD      Y1, 448(SP)
+	VCMPPD       $0x12, Y2, Y8, Y1
+	VANDPD       480(SP), Y1, Y1
+	VMOVUPD      Y1, 480(SP)
+	VMOVD        R13, X10
+	VPSHUFD      $0x00, X10, X10
+	VCVTTPD2DQY  Y0, X9
+	VPMINSD      X10, X9, X9
+	VPMAXSD      X11, X9, X9
+	VCVTDQ2PD    X9, Y1
+	VSUBPD       Y1, Y0, Y0
+	VMOVUPD      Y0, 256(SP)
+	VMOVD        R8, X0
+	VPSHUFD      $0x00, X0, X0
+	VPMULLD      X0, X9, X9
+	VPADDD       512(SP), X9, X9
+	VMOVDQU      X9, 512(SP)
+	VCVTTPD2DQY  Y6, X9
+	VPMINSD      X10, X9, X9
+	VPMAXSD      X11, X9, X9
+	VCVTDQ2PD    X9, Y1
+	VSUBPD       Y1, Y6, Y6
+	VMOVUPD      Y6, 288(SP)
+	VMOVD        R8, X0
+	VPSHUFD      $0x00, X0, X0
+	VPMULLD      X0, X9, X9
+	VPADDD       528(SP), X9, X9
+	VMOVDQU      X9, 528(SP)
+	VCVTTPD2DQY  Y7, X9
+	VPMINSD      X10, X9, X9
+	VPMAXSD      X11, X9, X9
+	VCVTDQ2PD    X9, Y1
+	VSUBPD       Y1, Y7, Y7
+	VMOVUPD      Y7, 320(SP)
+	VMOVD        R8, X0
+	VPSHUFD      $0x00, X0, X0
+	VPMULLD      X0, X9, X9
+	VPADDD       544(SP), X9, X9
+	VMOVDQU      X9, 544(SP)
+	VCVTTPD2DQY  Y8, X9
+	VPMINSD      X10, X9, X9
+	VPMAXSD      X11, X9, X9
+	VCVTDQ2PD    X9, Y1
+	VSUBPD       Y1, Y8, Y8
+	VMOVUPD      Y8, 352(SP)
+	VMOVD        R8, X0
+	VPSHUFD      $0x00, X0, X0
+	VPMULLD      X0, X9, X9
+	VPADDD       560(SP), X9, X9
+	VMOVDQU      X9, 560(SP)
+	VMOVUPD      128(SP), Y0
+	VMOVUPD      256(SP), Y1
+	VMOVUPD      384(SP), Y2
+	LEAQ         (DI)(R8*4), R10
+	MOVL         512(SP), R15
+	MOVL         516(SP), BP
+	VMOVSD       (DI)(R15*4), X3
+	VMOVHPS      (DI)(BP*4), X3, X3
+	VMOVSD       (R10)(R15*4), X4
+	VMOVHPS      (R10)(BP*4), X4, X4
+	MOVL         520(SP), R15
+	MOVL         524(SP), BP
+	VMOVSD       (DI)(R15*4), X5
+	VMOVHPS      (DI)(BP*4), X5, X5
+	VMOVSD       (R10)(R15*4), X6
+	VMOVHPS      (R10)(BP*4), X6, X6
+	VSHUFPS      $0x88, X5, X3, X7
+	VCVTPS2PD    X7, Y8
+	VSHUFPS      $0xdd, X5, X3, X7
+	VCVTPS2PD    X7, Y3
+	VSUBPD       Y8, Y3, Y3
+	VSHUFPS      $0x88, X6, X4, X5
+	VCVTPS2PD    X5, Y7
+	VSHUFPS      $0xdd, X6, X4, X5
+	VCVTPS2PD    X5, Y4
+	VSUBPD       Y7, Y4, Y4
+	VSUBPD       Y3, Y4, Y4
+	VSUBPD       Y8, Y7, Y7
+	VMULPD       Y3, Y0, Y5
+	VADDPD       Y5, Y8, Y8
+	VMULPD       Y7, Y1, Y5
+	VADDPD       Y5, Y8, Y8
+	VMULPD       Y1, Y0, Y5
+	VMULPD       Y4, Y5, Y5
+	VADDPD       Y5, Y8, Y8
+	VCMPPD       $0x00, Y8, Y8, Y5
+	VANDPD       Y5, Y2, Y2
+	VMULPD       Y4, Y1, Y5
+	VADDPD       Y5, Y3, Y3
 	VBROADCASTSD 8(SI), Y1
-	VMULPD       Y1, Y12, Y12
-	VMULPD       Y2, Y5, Y2
-	VMULPD       Y0, Y12, Y0
-	VADDPD       Y0, Y2, Y2
-	VANDPD       Y4, Y2, Y2
-	VMOVUPD      Y2, (CX)(R9*8)
-	VMULPD       Y3, Y5, Y3
-	VMULPD       Y9, Y12, Y9
-	VADDPD       Y9, Y3, Y3
-	VANDPD       Y4, Y3, Y3
-	VMOVUPD      Y3, (DX)(R9*8)
-	VMOVUPD      unknown<>+0(SB), Y7
-	VBLENDVPD    Y4, Y11, Y7, Y11
-	VMOVUPD      Y11, (AX)(R9*8)
-	ADDQ         $0x04, R9
-	JMP          next
+	VMULPD       Y1, Y3, Y3
+	VMULPD       Y4, Y0, Y5
+	VADDPD       Y5, Y7, Y7
+	VBROADCASTSD 8(SI), Y0
+	VMULPD       Y0, Y7, Y7
+	VMOVUPD      (SP), Y0
+	VBROADCASTSD 88(SI), Y1
+	VMULPD       Y1, Y0, Y1
+	VBROADCASTSD 72(SI), Y4
+	VADDPD       Y4, Y1, Y1
+	VBROADCASTSD 112(SI), Y4
+	VMULPD       Y4, Y0, Y4
+	VBROADCASTSD 104(SI), Y5
+	VADDPD       Y5, Y4, Y4
+	VMULPD       Y4, Y0, Y4
+	VBROADCASTSD 96(SI), Y5
+	VADDPD       Y5, Y4, Y4
+	VBROADCASTSD 144(SI), Y5
+	VMULPD       Y5, Y0, Y5
+	VBROADCASTSD 128(SI), Y6
+	VADDPD       Y6, Y5, Y5
+	VBROADCASTSD 168(SI), Y6
+	VMULPD       Y6, Y0, Y6
+	VBROADCASTSD 160(SI), Y9
+	VADDPD       Y9, Y6, Y6
+	VMULPD       Y6, Y0, Y6
+	VBROADCASTSD 152(SI), Y0
+	VADDPD       Y0, Y6, Y6
+	VMULPD       Y1, Y3, Y1
+	VMULPD       Y5, Y7, Y5
+	VADDPD       Y5, Y1, Y1
+	VANDPD       Y2, Y1, Y1
+	VMOVUPD      Y1, (CX)(R9*8)
+	VMULPD       Y4, Y3, Y4
+	VMULPD       Y6, Y7, Y6
+	VADDPD       Y6, Y4, Y4
+	VANDPD       Y2, Y4, Y4
+	VMOVUPD      Y4, (DX)(R9*8)
+	VMOVUPD      unknown<>+0(SB), Y5
+	VBLENDVPD    Y2, Y8, Y5, Y8
+	VMOVUPD      Y8, (AX)(R9*8)
+	VMOVUPD      160(SP), Y0
+	VMOVUPD      288(SP), Y1
+	VMOVUPD      416(SP), Y2
+	LEAQ         (DI)(R8*4), R10
+	MOVL         528(SP), R15
+	MOVL         532(SP), BP
+	VMOVSD       (DI)(R15*4), X3
+	VMOVHPS      (DI)(BP*4), X3, X3
+	VMOVSD       (R10)(R15*4), X4
+	VMOVHPS      (R10)(BP*4), X4, X4
+	MOVL         536(SP), R15
+	MOVL         540(SP), BP
+	VMOVSD       (DI)(R15*4), X5
+	VMOVHPS      (DI)(BP*4), X5, X5
+	VMOVSD       (R10)(R15*4), X6
+	VMOVHPS      (R10)(BP*4), X6, X6
+	VSHUFPS      $0x88, X5, X3, X7
+	VCVTPS2PD    X7, Y8
+	VSHUFPS      $0xdd, X5, X3, X7
+	VCVTPS2PD    X7, Y3
+	VSUBPD       Y8, Y3, Y3
+	VSHUFPS      $0x88, X6, X4, X5
+	VCVTPS2PD    X5, Y7
+	VSHUFPS      $0xdd, X6, X4, X5
+	VCVTPS2PD    X5, Y4
+	VSUBPD       Y7, Y4, Y4
+	VSUBPD       Y3, Y4, Y4
+	VSUBPD       Y8, Y7, Y7
+	VMULPD       Y3, Y0, Y5
+	VADDPD       Y5, Y8, Y8
+	VMULPD       Y7, Y1, Y5
+	VADDPD       Y5, Y8, Y8
+	VMULPD       Y1, Y0, Y5
+	VMULPD       Y4, Y5, Y5
+	VADDPD       Y5, Y8, Y8
+	VCMPPD       $0x00, Y8, Y8, Y5
+	VANDPD       Y5, Y2, Y2
+	VMULPD       Y4, Y1, Y5
+	VADDPD       Y5, Y3, Y3
+	VBROADCASTSD 8(SI), Y1
+	VMULPD       Y1, Y3, Y3
+	VMULPD       Y4, Y0, Y5
+	VADDPD       Y5, Y7, Y7
+	VBROADCASTSD 8(SI), Y0
+	VMULPD       Y0, Y7, Y7
+	VMOVUPD      32(SP), Y0
+	VBROADCASTSD 88(SI), Y1
+	VMULPD       Y1, Y0, Y1
+	VBROADCASTSD 72(SI), Y4
+	VADDPD       Y4, Y1, Y1
+	VBROADCASTSD 112(SI), Y4
+	VMULPD       Y4, Y0, Y4
+	VBROADCASTSD 104(SI), Y5
+	VADDPD       Y5, Y4, Y4
+	VMULPD       Y4, Y0, Y4
+	VBROADCASTSD 96(SI), Y5
+	VADDPD       Y5, Y4, Y4
+	VBROADCASTSD 144(SI), Y5
+	VMULPD       Y5, Y0, Y5
+	VBROADCASTSD 128(SI), Y6
+	VADDPD       Y6, Y5, Y5
+	VBROADCASTSD 168(SI), Y6
+	VMULPD       Y6, Y0, Y6
+	VBROADCASTSD 160(SI), Y9
+	VADDPD       Y9, Y6, Y6
+	VMULPD       Y6, Y0, Y6
+	VBROADCASTSD 152(SI), Y0
+	VADDPD       Y0, Y6, Y6
+	VMULPD       Y1, Y3, Y1
+	VMULPD       Y5, Y7, Y5
+	VADDPD       Y5, Y1, Y1
+	VANDPD       Y2, Y1, Y1
+	VMOVUPD      Y1, 32(CX)(R9*8)
+	VMULPD       Y4, Y3, Y4
+	VMULPD       Y6, Y7, Y6
+	VADDPD       Y6, Y4, Y4
+	VANDPD       Y2, Y4, Y4
+	VMOVUPD      Y4, 32(DX)(R9*8)
+	VMOVUPD      unknown<>+0(SB), Y5
+	VBLENDVPD    Y2, Y8, Y5, Y8
+	VMOVUPD      Y8, 32(AX)(R9*8)
+	VMOVUPD      192(SP), Y0
+	VMOVUPD      320(SP), Y1
+	VMOVUPD      448(SP), Y2
+	LEAQ         (DI)(R8*4), R10
+	MOVL         544(SP), R15
+	MOVL         548(SP), BP
+	VMOVSD       (DI)(R15*4), X3
+	VMOVHPS      (DI)(BP*4), X3, X3
+	VMOVSD       (R10)(R15*4), X4
+	VMOVHPS      (R10)(BP*4), X4, X4
+	MOVL         552(SP), R15
+	MOVL         556(SP), BP
+	VMOVSD       (DI)(R15*4), X5
+	VMOVHPS      (DI)(BP*4), X5, X5
+	VMOVSD       (R10)(R15*4), X6
+	VMOVHPS      (R10)(BP*4), X6, X6
+	VSHUFPS      $0x88, X5, X3, X7
+	VCVTPS2PD    X7, Y8
+	VSHUFPS      $0xdd, X5, X3, X7
+	VCVTPS2PD    X7, Y3
+	VSUBPD       Y8, Y3, Y3
+	VSHUFPS      $0x88, X6, X4, X5
+	VCVTPS2PD    X5, Y7
+	VSHUFPS      $0xdd, X6, X4, X5
+	VCVTPS2PD    X5, Y4
+	VSUBPD       Y7, Y4, Y4
+	VSUBPD       Y3, Y4, Y4
+	VSUBPD       Y8, Y7, Y7
+	VMULPD       Y3, Y0, Y5
+	VADDPD       Y5, Y8, Y8
+	VMULPD       Y7, Y1, Y5
+	VADDPD       Y5, Y8, Y8
+	VMULPD       Y1, Y0, Y5
+	VMULPD       Y4, Y5, Y5
+	VADDPD       Y5, Y8, Y8
+	VCMPPD       $0x00, Y8, Y8, Y5
+	VANDPD       Y5, Y2, Y2
+	VMULPD       Y4, Y1, Y5
+	VADDPD       Y5, Y3, Y3
+	VBROADCASTSD 8(SI), Y1
+	VMULPD       Y1, Y3, Y3
+	VMULPD       Y4, Y0, Y5
+	VADDPD       Y5, Y7, Y7
+	VBROADCASTSD 8(SI), Y0
+	VMULPD       Y0, Y7, Y7
+	VMOVUPD      64(SP), Y0
+	VBROADCASTSD 88(SI), Y1
+	VMULPD       Y1, Y0, Y1
+	VBROADCASTSD 72(SI), Y4
+	VADDPD       Y4, Y1, Y1
+	VBROADCASTSD 112(SI), Y4
+	VMULPD       Y4, Y0, Y4
+	VBROADCASTSD 104(SI), Y5
+	VADDPD       Y5, Y4, Y4
+	VMULPD       Y4, Y0, Y4
+	VBROADCASTSD 96(SI), Y5
+	VADDPD       Y5, Y4, Y4
+	VBROADCASTSD 144(SI), Y5
+	VMULPD       Y5, Y0, Y5
+	VBROADCASTSD 128(SI), Y6
+	VADDPD       Y6, Y5, Y5
+	VBROADCASTSD 168(SI), Y6
+	VMULPD       Y6, Y0, Y6
+	VBROADCASTSD 160(SI), Y9
+	VADDPD       Y9, Y6, Y6
+	VMULPD       Y6, Y0, Y6
+	VBROADCASTSD 152(SI), Y0
+	VADDPD       Y0, Y6, Y6
+	VMULPD       Y1, Y3, Y1
+	VMULPD       Y5, Y7, Y5
+	VADDPD       Y5, Y1, Y1
+	VANDPD       Y2, Y1, Y1
+	VMOVUPD      Y1, 64(CX)(R9*8)
+	VMULPD       Y4, Y3, Y4
+	VMULPD       Y6, Y7, Y6
+	VADDPD       Y6, Y4, Y4
+	VANDPD       Y2, Y4, Y4
+	VMOVUPD      Y4, 64(DX)(R9*8)
+	VMOVUPD      unknown<>+0(SB), Y5
+	VBLENDVPD    Y2, Y8, Y5, Y8
+	VMOVUPD      Y8, 64(AX)(R9*8)
+	VMOVUPD      224(SP), Y0
+	VMOVUPD      352(SP), Y1
+	VMOVUPD      480(SP), Y2
+	LEAQ         (DI)(R8*4), R10
+	MOVL         560(SP), R15
+	MOVL         564(SP), BP
+	VMOVSD       (DI)(R15*4), X3
+	VMOVHPS      (DI)(BP*4), X3, X3
+	VMOVSD       (R10)(R15*4), X4
+	VMOVHPS      (R10)(BP*4), X4, X4
+	MOVL         568(SP), R15
+	MOVL         572(SP), BP
+	VMOVSD       (DI)(R15*4), X5
+	VMOVHPS      (DI)(BP*4), X5, X5
+	VMOVSD       (R10)(R15*4), X6
+	VMOVHPS      (R10)(BP*4), X6, X6
+	VSHUFPS      $0x88, X5, X3, X7
+	VCVTPS2PD    X7, Y8
+	VSHUFPS      $0xdd, X5, X3, X7
+	VCVTPS2PD    X7, Y3
+	VSUBPD       Y8, Y3, Y3
+	VSHUFPS      $0x88, X6, X4, X5
+	VCVTPS2PD    X5, Y7
+	VSHUFPS      $0xdd, X6, X4, X5
+	VCVTPS2PD    X5, Y4
+	VSUBPD       Y7, Y4, Y4
+	VSUBPD       Y3, Y4, Y4
+	VSUBPD       Y8, Y7, Y7
+	VMULPD       Y3, Y0, Y5
+	VADDPD       Y5, Y8, Y8
+	VMULPD       Y7, Y1, Y5
+	VADDPD       Y5, Y8, Y8
+	VMULPD       Y1, Y0, Y5
+	VMULPD       Y4, Y5, Y5
+	VADDPD       Y5, Y8, Y8
+	VCMPPD       $0x00, Y8, Y8, Y5
+	VANDPD       Y5, Y2, Y2
+	VMULPD       Y4, Y1, Y5
+	VADDPD       Y5, Y3, Y3
+	VBROADCASTSD 8(SI), Y1
+	VMULPD       Y1, Y3, Y3
+	VMULPD       Y4, Y0, Y5
+	VADDPD       Y5, Y7, Y7
+	VBROADCASTSD 8(SI), Y0
+	VMULPD       Y0, Y7, Y7
+	VMOVUPD      96(SP), Y0
+	VBROADCASTSD 88(SI), Y1
+	VMULPD       Y1, Y0, Y1
+	VBROADCASTSD 72(SI), Y4
+	VADDPD       Y4, Y1, Y1
+	VBROADCASTSD 112(SI), Y4
+	VMULPD       Y4, Y0, Y4
+	VBROADCASTSD 104(SI), Y5
+	VADDPD       Y5, Y4, Y4
+	VMULPD       Y4, Y0, Y4
+	VBROADCASTSD 96(SI), Y5
+	VADDPD       Y5, Y4, Y4
+	VBROADCASTSD 144(SI), Y5
+	VMULPD       Y5, Y0, Y5
+	VBROADCASTSD 128(SI), Y6
+	VADDPD       Y6, Y5, Y5
+	VBROADCASTSD 168(SI), Y6
+	VMULPD       Y6, Y0, Y6
+	VBROADCASTSD 160(SI), Y9
+	VADDPD       Y9, Y6, Y6
+	VMULPD       Y6, Y0, Y6
+	VBROADCASTSD 152(SI), Y0
+	VADDPD       Y0, Y6, Y6
+	VMULPD       Y1, Y3, Y1
+	VMULPD       Y5, Y7, Y5
+	VADDPD       Y5, Y1, Y1
+	VANDPD       Y2, Y1, Y1
+	VMOVUPD      Y1, 96(CX)(R9*8)
+	VMULPD       Y4, Y3, Y4
+	VMULPD       Y6, Y7, Y6
+	VADDPD       Y6, Y4, Y4
+	VANDPD       Y2, Y4, Y4
+	VMOVUPD      Y4, 96(DX)(R9*8)
+	VMOVUPD      unknown<>+0(SB), Y5
+	VBLENDVPD    Y2, Y8, Y5, Y8
+	VMOVUPD      Y8, 96(AX)(R9*8)
+	MOVQ         R14, R9
+	JMP          sixteen
 
-done:
+sixteenDone:
+four:
+	LEAQ         4(R9), R14
+	CMPQ         R14, R11
+	JG           fourDone
+	VMOVUPD      (BX)(R9*8), Y2
+	VBROADCASTSD (SI), Y0
+	VSUBPD       Y0, Y2, Y2
+	VBROADCASTSD 8(SI), Y0
+	VMULPD       Y0, Y2, Y2
+	VBROADCASTSD 24(SI), Y0
+	VCMPPD       $0x11, Y0, Y2, Y0
+	VBROADCASTSD 16(SI), Y3
+	VCMPPD       $0x1d, Y3, Y2, Y1
+	VANDPD       Y1, Y0, Y0
+	VSUBPD       Y3, Y2, Y2
+	VMOVMSKPD    Y0, R10
+	CMPL         R10, $0x0f
+	JNE          fourDone
+	VMOVUPD      Y2, (SP)
+	VPXOR        X4, X4, X4
+	VBROADCASTSD 80(SI), Y0
+	VMULPD       Y0, Y2, Y0
+	VBROADCASTSD 72(SI), Y1
+	VADDPD       Y1, Y0, Y0
+	VMULPD       Y0, Y2, Y0
+	VBROADCASTSD 64(SI), Y1
+	VADDPD       Y1, Y0, Y0
+	VBROADCASTSD 32(SI), Y1
+	VCMPPD       $0x1d, Y1, Y0, Y1
+	VMOVUPD      Y1, 384(SP)
+	VBROADCASTSD 40(SI), Y1
+	VCMPPD       $0x12, Y1, Y0, Y1
+	VANDPD       384(SP), Y1, Y1
+	VMOVUPD      Y1, 384(SP)
+	VMOVD        R12, X1
+	VPSHUFD      $0x00, X1, X1
+	VCVTTPD2DQY  Y0, X3
+	VPMINSD      X1, X3, X3
+	VPMAXSD      X4, X3, X3
+	VCVTDQ2PD    X3, Y1
+	VSUBPD       Y1, Y0, Y0
+	VMOVUPD      Y0, 128(SP)
+	VMOVDQU      X3, 512(SP)
+	VBROADCASTSD 136(SI), Y0
+	VMULPD       Y0, Y2, Y0
+	VBROADCASTSD 128(SI), Y1
+	VADDPD       Y1, Y0, Y0
+	VMULPD       Y0, Y2, Y0
+	VBROADCASTSD 120(SI), Y1
+	VADDPD       Y1, Y0, Y0
+	VBROADCASTSD 48(SI), Y1
+	VCMPPD       $0x1d, Y1, Y0, Y1
+	VANDPD       384(SP), Y1, Y1
+	VMOVUPD      Y1, 384(SP)
+	VBROADCASTSD 56(SI), Y1
+	VCMPPD       $0x12, Y1, Y0, Y1
+	VANDPD       384(SP), Y1, Y1
+	VMOVUPD      Y1, 384(SP)
+	VMOVD        R13, X1
+	VPSHUFD      $0x00, X1, X1
+	VCVTTPD2DQY  Y0, X3
+	VPMINSD      X1, X3, X3
+	VPMAXSD      X4, X3, X3
+	VCVTDQ2PD    X3, Y1
+	VSUBPD       Y1, Y0, Y0
+	VMOVUPD      Y0, 256(SP)
+	VMOVD        R8, X0
+	VPSHUFD      $0x00, X0, X0
+	VPMULLD      X0, X3, X3
+	VPADDD       512(SP), X3, X3
+	VMOVDQU      X3, 512(SP)
+	VMOVUPD      128(SP), Y0
+	VMOVUPD      256(SP), Y1
+	VMOVUPD      384(SP), Y2
+	LEAQ         (DI)(R8*4), R10
+	MOVL         512(SP), R15
+	MOVL         516(SP), BP
+	VMOVSD       (DI)(R15*4), X3
+	VMOVHPS      (DI)(BP*4), X3, X3
+	VMOVSD       (R10)(R15*4), X4
+	VMOVHPS      (R10)(BP*4), X4, X4
+	MOVL         520(SP), R15
+	MOVL         524(SP), BP
+	VMOVSD       (DI)(R15*4), X5
+	VMOVHPS      (DI)(BP*4), X5, X5
+	VMOVSD       (R10)(R15*4), X6
+	VMOVHPS      (R10)(BP*4), X6, X6
+	VSHUFPS      $0x88, X5, X3, X7
+	VCVTPS2PD    X7, Y8
+	VSHUFPS      $0xdd, X5, X3, X7
+	VCVTPS2PD    X7, Y3
+	VSUBPD       Y8, Y3, Y3
+	VSHUFPS      $0x88, X6, X4, X5
+	VCVTPS2PD    X5, Y7
+	VSHUFPS      $0xdd, X6, X4, X5
+	VCVTPS2PD    X5, Y4
+	VSUBPD       Y7, Y4, Y4
+	VSUBPD       Y3, Y4, Y4
+	VSUBPD       Y8, Y7, Y7
+	VMULPD       Y3, Y0, Y5
+	VADDPD       Y5, Y8, Y8
+	VMULPD       Y7, Y1, Y5
+	VADDPD       Y5, Y8, Y8
+	VMULPD       Y1, Y0, Y5
+	VMULPD       Y4, Y5, Y5
+	VADDPD       Y5, Y8, Y8
+	VCMPPD       $0x00, Y8, Y8, Y5
+	VANDPD       Y5, Y2, Y2
+	VMULPD       Y4, Y1, Y5
+	VADDPD       Y5, Y3, Y3
+	VBROADCASTSD 8(SI), Y1
+	VMULPD       Y1, Y3, Y3
+	VMULPD       Y4, Y0, Y5
+	VADDPD       Y5, Y7, Y7
+	VBROADCASTSD 8(SI), Y0
+	VMULPD       Y0, Y7, Y7
+	VMOVUPD      (SP), Y0
+	VBROADCASTSD 88(SI), Y1
+	VMULPD       Y1, Y0, Y1
+	VBROADCASTSD 72(SI), Y4
+	VADDPD       Y4, Y1, Y1
+	VBROADCASTSD 112(SI), Y4
+	VMULPD       Y4, Y0, Y4
+	VBROADCASTSD 104(SI), Y5
+	VADDPD       Y5, Y4, Y4
+	VMULPD       Y4, Y0, Y4
+	VBROADCASTSD 96(SI), Y5
+	VADDPD       Y5, Y4, Y4
+	VBROADCASTSD 144(SI), Y5
+	VMULPD       Y5, Y0, Y5
+	VBROADCASTSD 128(SI), Y6
+	VADDPD       Y6, Y5, Y5
+	VBROADCASTSD 168(SI), Y6
+	VMULPD       Y6, Y0, Y6
+	VBROADCASTSD 160(SI), Y9
+	VADDPD       Y9, Y6, Y6
+	VMULPD       Y6, Y0, Y6
+	VBROADCASTSD 152(SI), Y0
+	VADDPD       Y0, Y6, Y6
+	VMULPD       Y1, Y3, Y1
+	VMULPD       Y5, Y7, Y5
+	VADDPD       Y5, Y1, Y1
+	VANDPD       Y2, Y1, Y1
+	VMOVUPD      Y1, (CX)(R9*8)
+	VMULPD       Y4, Y3, Y4
+	VMULPD       Y6, Y7, Y6
+	VADDPD       Y6, Y4, Y4
+	VANDPD       Y2, Y4, Y4
+	VMOVUPD      Y4, (DX)(R9*8)
+	VMOVUPD      unknown<>+0(SB), Y5
+	VBLENDVPD    Y2, Y8, Y5, Y8
+	VMOVUPD      Y8, (AX)(R9*8)
+	MOVQ         R14, R9
+	JMP          four
+
+fourDone:
 	MOVQ R9, done+72(FP)
 	VZEROUPPER
 	RET

@@ -78,7 +78,8 @@ func samplePatch(c *numbers) {
 	p.sample(func() (f, fu, fv VecVirtual) { return quadratic(col0) }, func() (f, fu, fv VecVirtual) { return quadratic(row0) })
 }
 
-// sampleRow is kernel.Patch.Sample of places that have one north.
+// sampleRow is kernel.Patch.Sample of places that have one north, sixteen at a time, then
+// four.
 func sampleRow(c *numbers) {
 	TEXT("sampleRowAVX2", NOSPLIT, "func(height, slopeE, slopeN, east, numbers *float64, heights *float32, n, cols, lastRow int) (done int)")
 	Pragma("noescape")
@@ -94,37 +95,122 @@ func sampleRow(c *numbers) {
 		return x
 	}
 	const minE, perM, lowE, highE, leastCol, col0, row0 = 0, 1, 2, 3, 4, 8, 15
-	Label("next")
-	CMPQ(i, Load(Param("n"), GP64()))
-	JGE(LabelRef("done"))
-	u, inside, t := YMM(), YMM(), YMM()
-	VMOVUPD(Mem{Base: east, Index: i, Scale: 8}, u)
-	VSUBPD(number(minE), u, u)
-	VMULPD(number(perM), u, u)
-	VCMPPD(Imm(0x1d), number(lowE), u, inside)
-	VCMPPD(Imm(0x11), number(highE), u, t)
-	VANDPD(t, inside, inside)
-	VSUBPD(number(lowE), u, u)
-	VMOVMSKPD(inside, left)
-	CMPL(left, Imm(15))
-	JNE(LabelRef("done"))
-	// A polynomial of u and its derivative, and that by v.
-	quadratic := func(a int) (f, fu, fv VecVirtual) {
-		by := func(k int) VecVirtual {
-			x := YMM()
-			VMULPD(number(k+2), u, x)
-			VADDPD(number(k+1), x, x)
-			VMULPD(x, u, x)
-			VADDPD(number(k), x, x)
-			return x
-		}
-		f, fu, fv = by(a), YMM(), by(a+4)
-		VMULPD(number(a+3), u, fu)
-		VADDPD(number(a+1), fu, fu)
-		return f, fu, fv
-	}
+	const most = 4
+	us, wheres, knowns, indices := AllocLocal(32*most), [2]Mem{AllocLocal(32 * most), AllocLocal(32 * most)}, AllocLocal(32*most), AllocLocal(16*most)
+	n := Load(Param("n"), GP64())
+	lasts := [2]Register{GP64(), Load(Param("lastRow"), GP64())}
+	LEAQ(Mem{Base: cols, Disp: -2}, lasts[0])
 	p := &bilinear{c, number, leastCol, perM, height, slopeE, slopeN, heights, cols, i}
-	p.sample(func() (f, fu, fv VecVirtual) { return quadratic(col0) }, func() (f, fu, fv VecVirtual) { return quadratic(row0) })
+	// Numbers are used for all vectors of a block, whose chains go side by side.
+	block := func(name string, vectors int) {
+		Label(name)
+		end := GP64()
+		LEAQ(Mem{Base: i, Disp: 4 * vectors}, end)
+		CMPQ(end, n)
+		JG(LabelRef(name + "Done"))
+		u, x, inside, t := make([]VecVirtual, vectors), make([]VecVirtual, vectors), YMM(), YMM()
+		for j := range u {
+			u[j], x[j] = YMM(), YMM()
+		}
+		each := func(use func(j int)) {
+			for j := range vectors {
+				use(j)
+			}
+		}
+		with := func(k int, use func(y Op, j int)) {
+			y := number(k)
+			each(func(j int) { use(y, j) })
+		}
+		each(func(j int) { VMOVUPD(Mem{Base: east, Index: i, Scale: 8, Disp: 32 * j}, u[j]) })
+		with(minE, func(y Op, j int) { VSUBPD(y, u[j], u[j]) })
+		with(perM, func(y Op, j int) { VMULPD(y, u[j], u[j]) })
+		with(highE, func(y Op, j int) {
+			if j == 0 {
+				VCMPPD(Imm(0x11), y, u[j], inside)
+				return
+			}
+			VCMPPD(Imm(0x11), y, u[j], t)
+			VANDPD(t, inside, inside)
+		})
+		with(lowE, func(y Op, j int) {
+			VCMPPD(Imm(0x1d), y, u[j], t)
+			VANDPD(t, inside, inside)
+			VSUBPD(y, u[j], u[j])
+		})
+		VMOVMSKPD(inside, left)
+		CMPL(left, Imm(15))
+		JNE(LabelRef(name + "Done"))
+		each(func(j int) { VMOVUPD(u[j], us.Offset(32*j)) })
+		// The cell, and where in it.
+		whole, many, zero := XMM(), XMM(), XMM()
+		VPXOR(zero, zero, zero)
+		for axis, a := range [2]int{col0, row0} {
+			with(a+2, func(y Op, j int) { VMULPD(y, u[j], x[j]) })
+			with(a+1, func(y Op, j int) { VADDPD(y, x[j], x[j]); VMULPD(x[j], u[j], x[j]) })
+			with(a, func(y Op, j int) { VADDPD(y, x[j], x[j]) })
+			with(leastCol+2*axis, func(y Op, j int) {
+				VCMPPD(Imm(0x1d), y, x[j], t)
+				if axis > 0 {
+					VANDPD(knowns.Offset(32*j), t, t)
+				}
+				VMOVUPD(t, knowns.Offset(32*j))
+			})
+			with(leastCol+2*axis+1, func(y Op, j int) {
+				VCMPPD(Imm(0x12), y, x[j], t)
+				VANDPD(knowns.Offset(32*j), t, t)
+				VMOVUPD(t, knowns.Offset(32*j))
+			})
+			VMOVD(lasts[axis].(GPVirtual).As32(), many)
+			VPSHUFD(Imm(0), many, many)
+			each(func(j int) {
+				VCVTTPD2DQY(x[j], whole)
+				VPMINSD(many, whole, whole)
+				VPMAXSD(zero, whole, whole)
+				VCVTDQ2PD(whole, t)
+				VSUBPD(t, x[j], x[j])
+				VMOVUPD(x[j], wheres[axis].Offset(32*j))
+				if axis == 0 {
+					VMOVDQU(whole, indices.Offset(16*j))
+					return
+				}
+				across := XMM()
+				VMOVD(cols.(GPVirtual).As32(), across)
+				VPSHUFD(Imm(0), across, across)
+				VPMULLD(across, whole, whole)
+				VPADDD(indices.Offset(16*j), whole, whole)
+				VMOVDQU(whole, indices.Offset(16*j))
+			})
+		}
+		each(func(j int) {
+			col, row, known := YMM(), YMM(), YMM()
+			VMOVUPD(wheres[0].Offset(32*j), col)
+			VMOVUPD(wheres[1].Offset(32*j), row)
+			VMOVUPD(knowns.Offset(32*j), known)
+			p.ends(j, func(k int, to Register) { MOVL(indices.Offset(16*j+4*k), to) }, col, row, known, func() (cols, rows [2]VecVirtual) {
+				u := YMM()
+				VMOVUPD(us.Offset(32*j), u)
+				slopes := func(a int) [2]VecVirtual {
+					fu, fv := YMM(), YMM()
+					VMULPD(number(a+3), u, fu)
+					VADDPD(number(a+1), fu, fu)
+					VMULPD(number(a+6), u, fv)
+					VADDPD(number(a+5), fv, fv)
+					VMULPD(fv, u, fv)
+					VADDPD(number(a+4), fv, fv)
+					return [2]VecVirtual{fu, fv}
+				}
+				return slopes(col0), slopes(row0)
+			})
+		})
+		MOVQ(end, i)
+		JMP(LabelRef(name))
+		Label(name + "Done")
+	}
+	block("sixteen", most)
+	block("four", 1)
+	Store(i, ReturnIndex(0))
+	VZEROUPPER()
+	RET()
 }
 
 // bilinear is what ends a sampling loop: from columns, rows and their derivatives to
@@ -141,7 +227,6 @@ type bilinear struct {
 // sample takes what is at four places, goes to the next ones, and returns at the label done.
 func (p *bilinear) sample(cols, rows func() (f, fu, fv VecVirtual)) {
 	number, i := p.number, p.i
-	at := func(of Register) Mem { return Mem{Base: of, Index: i, Scale: 8} }
 	col, cu, cv := cols()
 	known := YMM()
 	within := func(x VecVirtual, least, most int, first bool) {
@@ -180,28 +265,51 @@ func (p *bilinear) sample(cols, rows func() (f, fu, fv VecVirtual)) {
 	VPSHUFD(Imm(0), most, most)
 	VPMULLD(most, w0, w0)
 	VPADDD(c0, w0, w0)
-	// Two samples of a row, at each of four places.
-	ptr, ptr2 := GP32(), GP32()
-	pairs := func(base Register) (first, second VecVirtual) {
-		a, b, x := XMM(), XMM(), XMM()
-		first, second = YMM(), YMM()
-		for k, into := range []VecVirtual{a, b} {
-			VPEXTRD(Imm(uint64(2*k)), w0, ptr)
-			VPEXTRD(Imm(uint64(2*k+1)), w0, ptr2)
+	p.ends(0, func(k int, to Register) { VPEXTRD(Imm(uint64(k)), w0, to) }, col, row, known, func() (cols, rows [2]VecVirtual) {
+		return [2]VecVirtual{cu, cv}, [2]VecVirtual{ru, rv}
+	})
+	ADDQ(Imm(4), i)
+	JMP(LabelRef("next"))
+	Label("done")
+	Store(i, ReturnIndex(0))
+	VZEROUPPER()
+	RET()
+}
+
+// ends writes heights and slopes at vector j of places from p.i on: index moves where the
+// samples of place k are to a register of 32 bits, col and row are where it is in its cell,
+// slopes their derivatives by u and by v.
+func (p *bilinear) ends(j int, index func(k int, to Register), col, row, known VecVirtual, slopes func() (cols, rows [2]VecVirtual)) {
+	number := p.number
+	at := func(of Register) Mem { return Mem{Base: of, Index: p.i, Scale: 8, Disp: 32 * j} }
+	// Two samples of a row, and of the next one, at each of four places.
+	below := GP64()
+	LEAQ(Mem{Base: p.heights, Index: p.cols, Scale: 4}, below)
+	bases := [2]Register{p.heights, below}
+	var two [2][2]VecVirtual
+	for k := range 2 {
+		ptr, ptr2 := GP32(), GP32()
+		index(2*k, ptr)
+		index(2*k+1, ptr2)
+		for r, base := range bases {
+			into := XMM()
 			VMOVSD(Mem{Base: base, Index: ptr.As64(), Scale: 4}, into)
 			VMOVHPS(Mem{Base: base, Index: ptr2.As64(), Scale: 4}, into, into)
+			two[r][k] = into
 		}
-		VSHUFPS(Imm(0x88), b, a, x)
+	}
+	pairs := func(r int) (first, second VecVirtual) {
+		x := XMM()
+		first, second = YMM(), YMM()
+		VSHUFPS(Imm(0x88), two[r][1], two[r][0], x)
 		VCVTPS2PD(x, first)
-		VSHUFPS(Imm(0xdd), b, a, x)
+		VSHUFPS(Imm(0xdd), two[r][1], two[r][0], x)
 		VCVTPS2PD(x, second)
 		return first, second
 	}
-	h00, dc := pairs(p.heights)
+	h00, dc := pairs(0)
 	VSUBPD(h00, dc, dc)
-	below := GP64()
-	LEAQ(Mem{Base: p.heights, Index: p.cols, Scale: 4}, below)
-	dr, twist := pairs(below)
+	dr, twist := pairs(1)
 	VSUBPD(dr, twist, twist)
 	VSUBPD(dc, twist, twist)
 	VSUBPD(h00, dr, dr)
@@ -222,23 +330,15 @@ func (p *bilinear) sample(cols, rows func() (f, fu, fv VecVirtual)) {
 	VMULPD(twist, col, x)
 	VADDPD(x, dr, dr)
 	VMULPD(number(p.perM), dr, dr)
-	for _, s := range []struct {
-		by, and VecVirtual
-		to      Register
-	}{{cu, ru, p.slopeE}, {cv, rv, p.slopeN}} {
-		VMULPD(s.by, dc, s.by)
-		VMULPD(s.and, dr, s.and)
-		VADDPD(s.and, s.by, s.by)
-		VANDPD(known, s.by, s.by)
-		VMOVUPD(s.by, at(s.to))
+	cols, rows := slopes()
+	for k, to := range [2]Register{p.slopeE, p.slopeN} {
+		VMULPD(cols[k], dc, cols[k])
+		VMULPD(rows[k], dr, rows[k])
+		VADDPD(rows[k], cols[k], cols[k])
+		VANDPD(known, cols[k], cols[k])
+		VMOVUPD(cols[k], at(to))
 	}
 	VMOVUPD(p.c.unknown, x)
 	VBLENDVPD(known, h, x, h)
 	VMOVUPD(h, at(p.height))
-	ADDQ(Imm(4), i)
-	JMP(LabelRef("next"))
-	Label("done")
-	Store(i, ReturnIndex(0))
-	VZEROUPPER()
-	RET()
 }
