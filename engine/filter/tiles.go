@@ -156,13 +156,7 @@ func (ts *tileSpace) spreadTile(out []float64, at TileAt, src *Tiles) bool {
 	ts.fine = resize(ts.fine, int(cols*rows))
 	ts.window(src, ts.fine, TileAt{at.Col*TileSide - beside, at.Row*TileSide - above}, cols, rows, false)
 	first, stride := int(above*cols+beside), int(row*cols+col)
-	if cols == TileSide {
-		kernel.Spread(out, ts.fine, first, stride, ts.taps.weight)
-		return true
-	}
-	for r := range TileSide {
-		kernel.Spread(out[r*TileSide:(r+1)*TileSide], ts.fine, first+r*int(cols), stride, ts.taps.weight)
-	}
+	kernel.SpreadRows(out, ts.fine, first, stride, TileSide, int(cols), ts.taps.weight)
 	return true
 }
 

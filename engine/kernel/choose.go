@@ -2,8 +2,8 @@
 
 package kernel
 
-func spread(dst, src []float64, at, stride int, weight []float64) {
-	spreadPlain(dst, src, at, stride, weight, 0)
+func spread(dst, src []float64, at, stride, cols, from int, weight []float64) {
+	spreadRowsPlain(dst, src, at, stride, cols, from, weight)
 }
 
 func logNormal(dst, residual, variance []float64, logWeight float64) {

@@ -8,14 +8,22 @@ var vectors = cpu.X86.HasAVX2
 
 const valueBytes = 8
 
-func spread(dst, src []float64, at, stride int, weight []float64) {
-	n := 0
-	if vectors {
-		if n = len(dst) &^ 3; n > 0 {
-			spreadAVX2(&dst[0], &src[at], &weight[0], n, stride*valueBytes, len(weight)-1)
+func spread(dst, src []float64, at, stride, cols, from int, weight []float64) {
+	rows := len(dst) / cols
+	switch whole := cols &^ 3; {
+	case !vectors:
+		spreadRowsPlain(dst, src, at, stride, cols, from, weight)
+	case whole == cols:
+		spreadAVX2(&dst[0], &src[at], &weight[0], cols, rows, from*valueBytes, stride*valueBytes, len(weight)-1)
+	default:
+		for r := range rows {
+			row := dst[r*cols : (r+1)*cols]
+			if whole > 0 {
+				spreadAVX2(&row[0], &src[at+r*from], &weight[0], whole, 1, 0, stride*valueBytes, len(weight)-1)
+			}
+			spreadPlain(row, src, at+r*from, stride, weight, whole)
 		}
 	}
-	spreadPlain(dst, src, at, stride, weight, n)
 }
 
 func logNormal(dst, residual, variance []float64, logWeight float64) {

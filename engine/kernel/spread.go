@@ -7,12 +7,29 @@ package kernel
 // added from the middle outwards, first at i-n·stride. All that it reads must lie
 // in src, which dst must not overlap. The stride may be negative.
 func Spread(dst, src []float64, at, stride int, weight []float64) {
-	reach := (len(weight) - 1) * max(stride, -stride)
+	SpreadRows(dst, src, at, stride, len(dst), len(dst), weight)
+}
+
+// SpreadRows is Spread for rows of cols values, one after the other in dst and from values
+// apart in src: at is the first one's.
+func SpreadRows(dst, src []float64, at, stride, cols, from int, weight []float64) {
 	if len(dst) == 0 {
 		return
 	}
-	_, _ = src[at-reach], src[at+len(dst)-1+reach]
-	spread(dst, src, at, stride, weight)
+	if cols <= 0 || from < 0 || len(dst)%cols != 0 {
+		panic("kernel: rows that go back or are not whole")
+	}
+	reach := (len(weight) - 1) * max(stride, -stride)
+	_, _ = src[at-reach], src[at+(len(dst)/cols-1)*from+cols-1+reach]
+	spread(dst, src, at, stride, cols, from, weight)
+}
+
+// spreadRowsPlain is SpreadRows in plain Go.
+func spreadRowsPlain(dst, src []float64, at, stride, cols, from int, weight []float64) {
+	for ; len(dst) > 0; dst = dst[cols:] {
+		spreadPlain(dst[:cols], src, at, stride, weight, 0)
+		at += from
+	}
 }
 
 // spreadPlain is Spread in plain Go, from index i of dst on.

@@ -4,10 +4,10 @@
 
 package kernel
 
-// spreadAVX2 is spreadPlain for n values, a multiple of 4; src is the middle, stride in bytes, reach the number of weights beside it.
+// spreadAVX2 is spreadPlain for rows of cols values, a multiple of 4; src is the middle, from and stride in bytes, reach the number of weights beside it.
 //
 //go:noescape
-func spreadAVX2(dst *float64, src *float64, weight *float64, n int, stride int, reach int)
+func spreadAVX2(dst *float64, src *float64, weight *float64, cols int, rows int, from int, stride int, reach int)
 
 // addScaledAVX2 is addScaledPlain for n values, a multiple of 4.
 //

@@ -4,53 +4,57 @@
 
 #include "textflag.h"
 
-// func spreadAVX2(dst *float64, src *float64, weight *float64, n int, stride int, reach int)
+// func spreadAVX2(dst *float64, src *float64, weight *float64, cols int, rows int, from int, stride int, reach int)
 // Requires: AVX
-TEXT ·spreadAVX2(SB), NOSPLIT, $0-48
+TEXT ·spreadAVX2(SB), NOSPLIT, $0-64
 	MOVQ dst+0(FP), AX
 	MOVQ src+8(FP), CX
 	MOVQ weight+16(FP), DX
-	MOVQ n+24(FP), BX
-	MOVQ stride+32(FP), SI
-	MOVQ reach+40(FP), DI
+	MOVQ rows+32(FP), BX
+	MOVQ stride+48(FP), SI
+	MOVQ reach+56(FP), DI
+
+row:
+	MOVQ cols+24(FP), R8
+	MOVQ CX, R9
 
 sixteen:
-	CMPQ         BX, $0x10
+	CMPQ         R8, $0x10
 	JB           sixteenDone
 	VBROADCASTSD (DX), Y0
 	VMULPD       (CX), Y0, Y2
 	VMULPD       32(CX), Y0, Y3
 	VMULPD       64(CX), Y0, Y4
 	VMULPD       96(CX), Y0, Y5
-	MOVQ         CX, R8
-	MOVQ         CX, R9
-	MOVQ         DX, R10
-	MOVQ         DI, R11
+	MOVQ         CX, R10
+	MOVQ         CX, R11
+	MOVQ         DX, R12
+	MOVQ         DI, R13
 
 sixteenTap:
-	TESTQ        R11, R11
+	TESTQ        R13, R13
 	JZ           sixteenOut
-	SUBQ         SI, R8
-	ADDQ         SI, R9
-	ADDQ         $0x08, R10
-	VBROADCASTSD (R10), Y0
-	VMULPD       (R8), Y0, Y1
+	SUBQ         SI, R10
+	ADDQ         SI, R11
+	ADDQ         $0x08, R12
+	VBROADCASTSD (R12), Y0
+	VMULPD       (R10), Y0, Y1
 	VADDPD       Y1, Y2, Y2
-	VMULPD       (R9), Y0, Y1
+	VMULPD       (R11), Y0, Y1
 	VADDPD       Y1, Y2, Y2
-	VMULPD       32(R8), Y0, Y1
+	VMULPD       32(R10), Y0, Y1
 	VADDPD       Y1, Y3, Y3
-	VMULPD       32(R9), Y0, Y1
+	VMULPD       32(R11), Y0, Y1
 	VADDPD       Y1, Y3, Y3
-	VMULPD       64(R8), Y0, Y1
+	VMULPD       64(R10), Y0, Y1
 	VADDPD       Y1, Y4, Y4
-	VMULPD       64(R9), Y0, Y1
+	VMULPD       64(R11), Y0, Y1
 	VADDPD       Y1, Y4, Y4
-	VMULPD       96(R8), Y0, Y1
+	VMULPD       96(R10), Y0, Y1
 	VADDPD       Y1, Y5, Y5
-	VMULPD       96(R9), Y0, Y1
+	VMULPD       96(R11), Y0, Y1
 	VADDPD       Y1, Y5, Y5
-	DECQ         R11
+	DECQ         R13
 	JMP          sixteenTap
 
 sixteenOut:
@@ -60,42 +64,47 @@ sixteenOut:
 	VMOVUPD Y5, 96(AX)
 	ADDQ    $0x80, AX
 	ADDQ    $0x80, CX
-	SUBQ    $0x10, BX
+	SUBQ    $0x10, R8
 	JMP     sixteen
 
 sixteenDone:
 four:
-	CMPQ         BX, $0x04
+	CMPQ         R8, $0x04
 	JB           fourDone
 	VBROADCASTSD (DX), Y0
 	VMULPD       (CX), Y0, Y2
-	MOVQ         CX, R8
-	MOVQ         CX, R9
-	MOVQ         DX, R10
-	MOVQ         DI, R11
+	MOVQ         CX, R10
+	MOVQ         CX, R11
+	MOVQ         DX, R12
+	MOVQ         DI, R13
 
 fourTap:
-	TESTQ        R11, R11
+	TESTQ        R13, R13
 	JZ           fourOut
-	SUBQ         SI, R8
-	ADDQ         SI, R9
-	ADDQ         $0x08, R10
-	VBROADCASTSD (R10), Y0
-	VMULPD       (R8), Y0, Y1
+	SUBQ         SI, R10
+	ADDQ         SI, R11
+	ADDQ         $0x08, R12
+	VBROADCASTSD (R12), Y0
+	VMULPD       (R10), Y0, Y1
 	VADDPD       Y1, Y2, Y2
-	VMULPD       (R9), Y0, Y1
+	VMULPD       (R11), Y0, Y1
 	VADDPD       Y1, Y2, Y2
-	DECQ         R11
+	DECQ         R13
 	JMP          fourTap
 
 fourOut:
 	VMOVUPD Y2, (AX)
 	ADDQ    $0x20, AX
 	ADDQ    $0x20, CX
-	SUBQ    $0x04, BX
+	SUBQ    $0x04, R8
 	JMP     four
 
 fourDone:
+	MOVQ R9, CX
+	MOVQ from+40(FP), R10
+	ADDQ R10, CX
+	DECQ BX
+	JNZ  row
 	VZEROUPPER
 	RET
 

@@ -59,6 +59,40 @@ func TestSpreadBits(t *testing.T) {
 	}
 }
 
+// TestSpreadRowsBits compares SpreadRows with Spread of each row in plain Go, for every
+// length of a tail.
+func TestSpreadRowsBits(t *testing.T) {
+	const seed = 25
+	rng := rand.New(rand.NewPCG(seed, 1))
+	for cols := 1; cols < 75; cols++ {
+		for _, reach := range []int{0, 1, 3} {
+			rows, from := 1+rng.IntN(5), cols+rng.IntN(9)
+			stride := []int{1, from, from - 1, -from}[rng.IntN(4)]
+			at := reach * max(stride, -stride)
+			src := make([]float64, at+(rows-1)*from+cols+at)
+			for i := range src {
+				src[i] = math.Exp(-700 * rng.Float64())
+				if rng.IntN(4) == 0 {
+					src[i] = awkward[rng.IntN(len(awkward))]
+				}
+			}
+			weight := make([]float64, reach+1)
+			for i := range weight {
+				weight[i] = math.Exp(-float64(i*i) * rng.Float64())
+			}
+			got, want := make([]float64, rows*cols), make([]float64, rows*cols)
+			SpreadRows(got, src, at, stride, cols, from, weight)
+			for r := range rows {
+				spreadPlain(want[r*cols:(r+1)*cols], src, at+r*from, stride, weight, 0)
+			}
+			sameBits(t, "SpreadRows", got, want)
+			clear(got)
+			spreadRowsPlain(got, src, at, stride, cols, from, weight)
+			sameBits(t, "SpreadRows in plain Go", got, want)
+		}
+	}
+}
+
 // TestWeighBits compares with plain Go, for every length of a tail, over all
 // arguments at which Exp changes its way: denormal results, 0, -Inf.
 func TestWeighBits(t *testing.T) {

@@ -10,15 +10,18 @@ import (
 	. "github.com/mmcloughlin/avo/reg"
 )
 
-// spread is kernel.Spread for n values, a multiple of 4: sixteen at a time, then
-// four.
+// spread is kernel.SpreadRows for rows of cols values, a multiple of 4: sixteen at a
+// time, then four.
 func spread() {
-	TEXT("spreadAVX2", NOSPLIT, "func(dst, src, weight *float64, n, stride, reach int)")
+	TEXT("spreadAVX2", NOSPLIT, "func(dst, src, weight *float64, cols, rows, from, stride, reach int)")
 	Pragma("noescape")
-	Doc("spreadAVX2 is spreadPlain for n values, a multiple of 4; src is the middle, stride in bytes, reach the number of weights beside it.")
+	Doc("spreadAVX2 is spreadPlain for rows of cols values, a multiple of 4; src is the middle, from and stride in bytes, reach the number of weights beside it.")
 	dst, src, weight := Load(Param("dst"), GP64()), Load(Param("src"), GP64()), Load(Param("weight"), GP64())
-	n, stride, reach := Load(Param("n"), GP64()), Load(Param("stride"), GP64()), Load(Param("reach"), GP64())
-	below, above, w, left := GP64(), GP64(), GP64(), GP64()
+	rows, stride, reach := Load(Param("rows"), GP64()), Load(Param("stride"), GP64()), Load(Param("reach"), GP64())
+	n, first, below, above, w, left := GP64(), GP64(), GP64(), GP64(), GP64(), GP64()
+	Label("row")
+	Load(Param("cols"), n)
+	MOVQ(src, first)
 
 	block := func(name string, vectors int) {
 		Label(name)
@@ -62,6 +65,10 @@ func spread() {
 	}
 	block("sixteen", 4)
 	block("four", 1)
+	MOVQ(first, src)
+	ADDQ(Load(Param("from"), below), src)
+	DECQ(rows)
+	JNZ(LabelRef("row"))
 	VZEROUPPER()
 	RET()
 }
