@@ -11,6 +11,8 @@ PROTOS    = $(wildcard proto/leadline/v1/*.proto)
 VERSION  ?= $(shell git describe --tags --always --dirty 2>/dev/null || echo unknown)
 FUZZ_TIME ?= 30s
 FUZZ_PART ?= 0/1
+RACE_PART ?= 0/1
+TRIM     ?= -trimpath
 
 # The packages that start goroutines; a test in engine/ compares the list with
 # the code. A tree may be named before it exists.
@@ -21,7 +23,7 @@ RACE_PACKAGES = ./engine/server/... ./engine/client/... ./engine/livelog/... ./e
 
 # build makes one static binary.
 build:
-	CGO_ENABLED=0 $(GO) build -trimpath -ldflags '-s -w -X main.version=$(VERSION)' -o bin/leadline ./cmd/leadline
+	CGO_ENABLED=0 $(GO) build $(TRIM) -ldflags '-s -w -X main.version=$(VERSION)' -o bin/leadline ./cmd/leadline
 
 # test runs every test and prints the slowest ten and what was skipped. It is
 # the same as `go run ./tools/testreport`. LEADLINE_NO_SKIP=1 makes a skip a
@@ -31,9 +33,9 @@ test:
 
 # race runs the concurrent packages under the race detector, which needs a C
 # compiler. -short leaves out what filters for long and what runs the program,
-# which is built without the detector.
+# which is built without the detector. RACE_PART=k/n does every nth entry of the list.
 race:
-	CGO_ENABLED=1 $(GO) test -race -short -vet=off $(foreach p,$(RACE_PACKAGES),$(if $(wildcard $(p:/...=)/),$(p)))
+	CGO_ENABLED=1 $(GO) test -race -short -vet=off $(shell printf '%s\n' $(foreach p,$(RACE_PACKAGES),$(if $(wildcard $(p:/...=)/),$(p))) | awk -v part=$(RACE_PART) 'BEGIN { split(part, of, "/") } NR % of[2] == of[1]')
 
 # fuzz fuzzes every target live, or those of a part of the packages; they share FUZZ_TIME.
 fuzz:
