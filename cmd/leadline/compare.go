@@ -3,6 +3,7 @@ package main
 import (
 	"fmt"
 	"io"
+	"slices"
 	"strings"
 
 	"github.com/spf13/cobra"
@@ -23,7 +24,7 @@ setting (DIR/SETTING), or one run (DIR/SETTING/DRIVE). Drives are paired by name
 --fail-if takes comparisons of figures joined by and, or, not and brackets, with
 numbers, + - * /. A figure such as p95_m is its mean over the drives of B; with
 a. before it that of A, diff. the mean difference, low. and high. the ends of its
-95 % interval, worst. the worst drive of B, better. and worse. in how many drives
+95 % interval, worst. the worst run of B, better. and worse. in how many drives
 B is; drives is how many are compared. Where one holds the exit status is 1:
 
     leadline compare before after --fail-if 'p95_m > 8 or low.p95_m > 0'`,
@@ -86,7 +87,11 @@ func comparison(a, b string) (*compare.Comparison, error) {
 // printComparison prints what a person wants to know of a comparison.
 func printComparison(w io.Writer, c *compare.Comparison) error {
 	var b strings.Builder
-	fmt.Fprintf(&b, "A %s\nB %s\n%s\n%d drives compared, %d with the same posteriors\n", c.A, c.B, c.How, c.Drives, c.SameBits)
+	compared := fmt.Sprintf("%d drives", c.Drives)
+	if c.Runs != c.Drives {
+		compared = fmt.Sprintf("%d runs of %d drives", c.Runs, c.Drives)
+	}
+	fmt.Fprintf(&b, "A %s\nB %s\n%s\n%s compared, %d with the same posteriors\n", c.A, c.B, c.How, compared, c.SameBits)
 	for _, only := range []struct {
 		side  string
 		names []string
@@ -95,8 +100,10 @@ func printComparison(w io.Writer, c *compare.Comparison) error {
 			fmt.Fprintf(&b, "only in %s: %s\n", only.side, strings.Join(only.names, ", "))
 		}
 	}
-	for _, n := range c.Notes {
-		fmt.Fprintf(&b, "note: %s\n", n)
+	for _, n := range append(slices.Clone(c.Notes), c.Apart()) {
+		if n != "" {
+			fmt.Fprintf(&b, "note: %s\n", n)
+		}
 	}
 	fmt.Fprintf(&b, "%-20s %6s %10s %10s %10s  %-23s %6s %6s  %s\n", "figure", "drives", "A", "B", "B - A", "95 % interval", "better", "worse", "worst of B")
 	for _, f := range c.Figures {

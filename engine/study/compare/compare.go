@@ -21,8 +21,9 @@ type Comparison struct {
 	// Tolerance is the relative difference up to which figures of different
 	// programs or machines count as the same; 0 for the same.
 	Tolerance float64 `json:"tolerance"`
-	Drives    int     `json:"drives"` // compared
-	SameBits  int     `json:"same_bits"`
+	Drives    int     `json:"drives"`    // compared
+	Runs      int     `json:"runs"`      // of these drives, one a setting
+	SameBits  int     `json:"same_bits"` // runs
 	// OnlyA and OnlyB are runs without a counterpart; Notes what else makes the
 	// comparison doubtful.
 	OnlyA   []string  `json:"only_a"`
@@ -32,7 +33,9 @@ type Comparison struct {
 	Pairs   []Pair    `json:"pairs"`
 }
 
-// Changed is one figure over all drives in which both sides have it.
+// Changed is one figure over all drives in which both sides have it. A drive counts
+// once, by the mean over its settings: what several settings make of one drive is not
+// independent, and would make an interval too narrow.
 type Changed struct {
 	Name   string  `json:"name"`
 	Drives int     `json:"drives"`
@@ -47,7 +50,7 @@ type Changed struct {
 	Interval   string   `json:"difference_interval"`
 	Better     int      `json:"better"` // drives in which B is
 	Worse      int      `json:"worse"`
-	WorstB     float64  `json:"b_worst"` // of any drive
+	WorstB     float64  `json:"b_worst"` // of any run
 	WorstDrive string   `json:"b_worst_drive"`
 }
 
@@ -92,6 +95,14 @@ func (c *Comparison) Few() string {
 	return ""
 }
 
+// Apart says what is counted where drives were run with several settings, "" where not.
+func (c *Comparison) Apart() string {
+	if c.Runs == c.Drives {
+		return ""
+	}
+	return "each drive counts once, by the mean over its settings: what several settings make of one drive is not independent"
+}
+
 // Of compares results. Sides of one setting each are paired by drive, others by
 // setting and drive. It is an error if nothing can be paired.
 func Of(a, b []*results.Result) (*Comparison, error) {
@@ -123,7 +134,11 @@ func Of(a, b []*results.Result) (*Comparison, error) {
 	if len(c.Pairs) == 0 {
 		return nil, fmt.Errorf("no drive is in both: the first has %s, the second %s", some(c.OnlyA), some(c.OnlyB))
 	}
-	c.Drives = len(c.Pairs)
+	drives := map[string]bool{}
+	for _, p := range c.Pairs {
+		drives[p.a.Drive] = true
+	}
+	c.Drives, c.Runs = len(drives), len(c.Pairs)
 	if c.Tolerance > 0 {
 		c.How = fmt.Sprintf("different programs or machines: compared by tolerance, figures that differ by less than %g of themselves count as the same", tolerance)
 	}
@@ -199,13 +214,32 @@ func (c *Comparison) pair(name string, a, b *results.Result) error {
 // changed sums up a figure; not ok if no drive has it on both sides.
 func (c *Comparison) changed(f *Figure) (Changed, bool) {
 	out := Changed{Name: f.Name}
-	var diffs []float64
+	type sums struct {
+		a, b float64
+		runs int
+	}
+	of := map[string]*sums{}
+	var order []*sums
 	for _, p := range c.Pairs {
 		a, inA := p.A[f.Name]
 		b, inB := p.B[f.Name]
 		if !inA || !inB {
 			continue
 		}
+		s := of[p.a.Drive]
+		if s == nil {
+			s = new(sums)
+			of[p.a.Drive] = s
+			order = append(order, s)
+		}
+		s.a, s.b, s.runs = s.a+a, s.b+b, s.runs+1
+		if out.WorstDrive == "" || f.worse(b) > f.worse(out.WorstB) {
+			out.WorstB, out.WorstDrive = b, p.Name
+		}
+	}
+	var diffs []float64
+	for _, s := range order {
+		a, b := s.a/float64(s.runs), s.b/float64(s.runs)
 		d := b - a
 		diffs = append(diffs, d)
 		out.A, out.B, out.Difference = out.A+a, out.B+b, out.Difference+d
@@ -216,9 +250,6 @@ func (c *Comparison) changed(f *Figure) (Changed, bool) {
 			case worse < 0:
 				out.Better++
 			}
-		}
-		if out.WorstDrive == "" || f.worse(b) > f.worse(out.WorstB) {
-			out.WorstB, out.WorstDrive = b, p.Name
 		}
 	}
 	n := float64(len(diffs))

@@ -133,3 +133,32 @@ func TestDoubts(t *testing.T) {
 		t.Errorf("%v", err)
 	}
 }
+
+// TestSettingsOfADrive: what three settings make of four drives is no twelve drives. The
+// interval is that of the drives' means, Student's with three degrees of freedom (3.1824,
+// from tables).
+func TestSettingsOfADrive(t *testing.T) {
+	var a, b []*results.Result
+	for d := range 4 {
+		for s := range 3 {
+			of := func(errM float64) *results.Result {
+				r := &results.Result{Run: results.Run{Drive: fmt.Sprint("d", d), Setting: fmt.Sprint("s=", s)}, Score: &score.Score{PosteriorSHA256: "same"}}
+				r.Score.Figures.P95M = &errM
+				return r
+			}
+			a, b = append(a, of(1)), append(b, of(1+float64(d)+0.1*float64(s-1)))
+		}
+	}
+	c, err := Of(a, b)
+	if err != nil {
+		t.Fatal(err)
+	}
+	f, ok := c.figure("p95_m")
+	half := 3.1824 * math.Sqrt((1.5*1.5+0.5*0.5+0.5*0.5+1.5*1.5)/3/4) // of 0, 1, 2, 3
+	if !ok || c.Drives != 4 || c.Runs != 12 || c.Apart() == "" || f.Drives != 4 || f.Better != 0 || f.Worse > 4 || math.Abs(f.Difference-1.5) > 1e-12 || math.Abs(*f.Low-(1.5-half)) > 1e-3 || math.Abs(*f.High-(1.5+half)) > 1e-3 {
+		t.Errorf("%+v\n%+v", c, f)
+	}
+	if f.WorstDrive != "s=2/d3" || f.WorstB != 4.1 {
+		t.Errorf("the worst is %g in %s", f.WorstB, f.WorstDrive)
+	}
+}

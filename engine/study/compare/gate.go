@@ -21,7 +21,7 @@ import (
 //
 // A figure alone, or with b., is its mean over the drives of B; a. that of A;
 // diff. the mean difference, low. and high. the ends of its interval; worst. the
-// worst of any drive in B; better. and worse. in how many drives B is.
+// worst of any run in B; better. and worse. in how many drives B is.
 //
 // Gate is one that was parsed.
 type Gate struct {
