@@ -12,8 +12,8 @@ import (
 // past are the events that the log has dropped, as searches may want them: five minutes
 // of an odometer and a gyro, which as events would be most of what a session holds. In
 // blocks, each of which is read by itself; in one, an increment of distance or heading
-// is what it differs by from the one before of its sensor, bit for bit: nine bytes, if
-// that is its value alone.
+// is what it differs by from the one before of its sensor, with value and sigma as
+// float32 (see searched): five bytes, if that is its value alone.
 type past struct {
 	blocks  []pastBlock
 	sources []pastSource // of increments, all that there have been
@@ -37,7 +37,7 @@ type pastSource struct {
 type lastIncrement struct {
 	time, every sensor.Time
 	number      uint64
-	sigma       uint64 // bits
+	sigma       uint32 // bits
 }
 
 const (
@@ -54,6 +54,30 @@ const (
 	pastSources = 0x0f
 	otherTime   = 0x10
 )
+
+// searched is an event as searches take it, whether it is in the past or still in the log:
+// the value and the sigma of an increment rounded to float32, 6e-8 of themselves, which is
+// 0.2 mm in 3 km. What would become 0 or infinite stays as it is.
+func searched(ev sensor.Event) sensor.Event {
+	switch m := ev.Measurement.(type) {
+	case sensor.Travel:
+		if m.DistanceM, m.SigmaM = float32Of(m.DistanceM), float32Of(m.SigmaM); m != ev.Measurement {
+			ev.Measurement = m
+		}
+	case sensor.Turn:
+		if m.AngleRad, m.SigmaRad = float32Of(m.AngleRad), float32Of(m.SigmaRad); m != ev.Measurement {
+			ev.Measurement = m
+		}
+	}
+	return ev
+}
+
+func float32Of(v float64) float64 {
+	if r := float64(float32(v)); r != 0 && !math.IsInf(r, 0) {
+		return r
+	}
+	return v
+}
 
 // add appends events, which are in order.
 func (p *past) add(events []sensor.Event) {
@@ -85,9 +109,11 @@ func (p *past) open() *pastBlock {
 	return &p.blocks[len(p.blocks)-1]
 }
 
-// code appends an event to a block: 0 for one that is among the others, else the number
-// of its source, from 1, its value, and what is otherwise than expected.
+// code appends an event to a block, as searches take it: 0 for one that is among the
+// others, else the number of its source, from 1, its value, and what is otherwise than
+// expected.
 func (p *past) code(b *pastBlock, ev sensor.Event) {
+	ev = searched(ev)
 	var since sensor.Time
 	var value, sigma float64
 	var turn bool
@@ -100,16 +126,16 @@ func (p *past) code(b *pastBlock, ev sensor.Event) {
 		since, value, sigma, turn = m.Since, m.AngleRad, m.SigmaRad, true
 		source = p.source(ev.Sensor, turn)
 	}
-	if source < 0 {
+	if source < 0 || !fits(value) || !fits(sigma) {
 		b.code, b.others = append(b.code, 0), append(b.others, ev)
 		return
 	}
 	last := &p.sources[source].lastIncrement
-	bits := math.Float64bits(sigma)
+	bits := math.Float32bits(float32(sigma))
 	head := len(b.code)
-	c := binary.LittleEndian.AppendUint64(append(b.code, byte(source+1)), math.Float64bits(value))
+	c := binary.LittleEndian.AppendUint32(append(b.code, byte(source+1)), math.Float32bits(float32(value)))
 	for i, other := range [4]uint64{
-		fold(int64(ev.Time - last.time - last.every)), fold(int64(ev.Number - last.number - 1)), fold(int64(since - last.time)), bits ^ last.sigma,
+		fold(int64(ev.Time - last.time - last.every)), fold(int64(ev.Number - last.number - 1)), fold(int64(since - last.time)), uint64(bits ^ last.sigma),
 	} {
 		if other != 0 {
 			c = binary.AppendUvarint(c, other)
@@ -119,6 +145,9 @@ func (p *past) code(b *pastBlock, ev sensor.Event) {
 	b.code = c
 	*last = lastIncrement{ev.Time, ev.Time - last.time, ev.Number, bits}
 }
+
+// fits reports whether a number is one of float32.
+func fits(v float64) bool { return float64(float32(v)) == v }
 
 // fold makes a number near 0 a small one without a sign.
 func fold(v int64) uint64 { return uint64(v<<1) ^ uint64(v>>63) }
@@ -151,8 +180,8 @@ func (p *past) events(dst []sensor.Event, b *pastBlock) []sensor.Event {
 			continue
 		}
 		l, s := &last[source], &p.sources[source]
-		head, value := c[0], math.Float64frombits(binary.LittleEndian.Uint64(c[1:]))
-		c = c[9:]
+		head, value := c[0], float64(math.Float32frombits(binary.LittleEndian.Uint32(c[1:])))
+		c = c[5:]
 		var other [4]uint64
 		for i := range other {
 			if head&(otherTime<<i) != 0 {
@@ -162,11 +191,12 @@ func (p *past) events(dst []sensor.Event, b *pastBlock) []sensor.Event {
 			}
 		}
 		ev := sensor.Event{Time: l.time + l.every + sensor.Time(unfold(other[0])), Sensor: s.sensor, Number: l.number + 1 + uint64(unfold(other[1]))}
-		since, bits := l.time+sensor.Time(unfold(other[2])), l.sigma^other[3]
+		since, bits := l.time+sensor.Time(unfold(other[2])), l.sigma^uint32(other[3])
+		sigma := float64(math.Float32frombits(bits))
 		if s.turn {
-			ev.Measurement = sensor.Turn{Since: since, AngleRad: value, SigmaRad: math.Float64frombits(bits)}
+			ev.Measurement = sensor.Turn{Since: since, AngleRad: value, SigmaRad: sigma}
 		} else {
-			ev.Measurement = sensor.Travel{Since: since, DistanceM: value, SigmaM: math.Float64frombits(bits)}
+			ev.Measurement = sensor.Travel{Since: since, DistanceM: value, SigmaM: sigma}
 		}
 		*l = lastIncrement{ev.Time, ev.Time - l.time, ev.Number, bits}
 		dst = append(dst, ev)

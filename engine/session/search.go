@@ -122,14 +122,15 @@ func (s *Session) search(events []sensor.Event, until, enter sensor.Time) *searc
 	return x
 }
 
-// events returns those after from, up to until, at most maxSearched of them.
+// events returns those after from, up to until, at most maxSearched of them, as searches
+// take them.
 func (s *Session) events(from, until sensor.Time) []sensor.Event {
 	all := s.past.between(nil, from, until)
 	evs := s.log.events
 	a := sort.Search(len(evs), func(i int) bool { return evs[i].Time > from })
 	b := sort.Search(len(evs), func(i int) bool { return evs[i].Time > until })
-	if a < b {
-		all = append(all, evs[a:b]...)
+	for _, ev := range evs[a:max(a, b)] {
+		all = append(all, searched(ev))
 	}
 	return all[max(0, len(all)-maxSearched):]
 }
