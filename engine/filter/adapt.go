@@ -37,35 +37,22 @@ func (t *Tiles) roughness() (je, jn float64) {
 		if j := t.find(TileAt{at.Col, at.Row + 1}); j >= 0 {
 			north = t.tile(j)
 		}
-		clear(root[:])
+		kernel.Roots(root[:], tile, TileSide, side)
 		for r := range TileSide {
-			roots(root[r*side:], tile[r*TileSide:(r+1)*TileSide])
+			root[r*side+TileSide] = 0
 			if east != nil {
 				root[r*side+TileSide] = math.Sqrt(east[r*TileSide])
 			}
 		}
+		clear(root[TileSide*side:])
 		if north != nil {
-			roots(root[TileSide*side:], north[:TileSide])
+			kernel.Roots(root[TileSide*side:], north[:TileSide], TileSide, side)
 		}
-		for r := range TileSide {
-			here, above := root[r*side:(r+1)*side], root[(r+1)*side:(r+2)*side]
-			for c, x := range here[:TileSide] {
-				de, dn := here[c+1]-x, above[c]-x
-				je += float64(de * de)
-				jn += float64(dn * dn)
-			}
-		}
+		de, dn := kernel.Steps(root[:], TileSide, TileSide, side)
+		je += de
+		jn += dn
 	}
 	return je, jn
-}
-
-// roots writes the square roots of masses, of which many are 0.
-func roots(dst, mass []float64) {
-	for i, v := range mass {
-		if v != 0 {
-			dst[i] = math.Sqrt(v)
-		}
-	}
 }
 
 // Spacing is at most fineScale of the belief's scale where the budget allows;
@@ -110,15 +97,7 @@ func Adapt(b *Belief, maxCells int, w *Workspace) bool {
 	return false
 }
 
-func (b *Belief) occupiedCells() int {
-	n := 0
-	for _, v := range b.Tiles.Mass {
-		if v > 0 {
-			n++
-		}
-	}
-	return n
-}
+func (b *Belief) occupiedCells() int { return kernel.Count(b.Tiles.Mass) }
 
 // Cells returns how many cells or Gaussians carry mass.
 func (b *Belief) Cells() int {

@@ -129,18 +129,8 @@ func (b *Belief) keepTile(t *Tiles, at TileAt, j int) int {
 // dropFaint zeroes cells below cellFloor and counts what goes; it reports whether some
 // are left.
 func (b *Belief) dropFaint(tile []float64) bool {
-	some, below := kernel.Faint(tile, cellFloor)
-	if !below {
-		return some
-	}
-	some = false
-	for i, v := range tile {
-		if v < cellFloor && v > 0 {
-			b.Pruned += v
-			tile[i] = 0
-		}
-		some = some || tile[i] > 0
-	}
+	some, dropped := kernel.DropBelow(tile, cellFloor)
+	b.Pruned += dropped
 	return some
 }
 

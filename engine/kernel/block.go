@@ -19,17 +19,24 @@ func copyBlockPlain(dst, src []float64, cols, rows, to, from int) {
 	}
 }
 
-// Faint reports whether there are values above 0, and whether some of these are below
-// floor.
-func Faint(src []float64, floor float64) (some, below bool) { return faint(src, floor) }
+// DropBelow zeroes what is above 0 and below floor. It reports whether values above 0 are left,
+// and the sum of what went: value i goes into sum i%4, which are added in pairs.
+func DropBelow(dst []float64, floor float64) (some bool, dropped float64) {
+	var sums [4]float64
+	some = dropBelow(&sums, dst, floor)
+	return some, (sums[0] + sums[1]) + (sums[2] + sums[3])
+}
 
-// faintPlain is Faint in plain Go, for values from i on.
-func faintPlain(src []float64, floor float64, i int) (some, below bool) {
-	for _, v := range src[i:] {
-		if v > 0 {
+// dropBelowPlain is DropBelow in plain Go, for values from i on.
+func dropBelowPlain(sums *[4]float64, dst []float64, floor float64, i int) (some bool) {
+	for ; i < len(dst); i++ {
+		switch v := dst[i]; {
+		case v > 0 && v < floor:
+			sums[i%4] += v
+			dst[i] = 0
+		case v > 0:
 			some = true
-			below = below || v < floor
 		}
 	}
-	return some, below
+	return some
 }

@@ -40,7 +40,9 @@ func copyBlock(dst, src []float64, cols, rows, to, from int) {
 	copyBlockPlain(dst, src, cols, rows, to, from)
 }
 
-func faint(src []float64, floor float64) (some, below bool) { return faintPlain(src, floor, 0) }
+func dropBelow(sums *[4]float64, dst []float64, floor float64) bool {
+	return dropBelowPlain(sums, dst, floor, 0)
+}
 
 func logs(dst, src []float64) { logsPlain(dst, src, 0) }
 
@@ -71,6 +73,14 @@ func sampleRow(p *Patch, r *rowOfPatch, height, slopeE, slopeN, east []float64) 
 }
 
 func dense(src []float64) bool { return densePlain(src, 0) }
+
+func count(src []float64) int { return countPlain(src, 0) }
+
+func roots(dst, src []float64, cols, rows, to int) { rootsPlain(dst, src, cols, rows, to) }
+
+func steps(sums *[8]float64, src []float64, cols, rows, from int) {
+	stepsPlain(sums, src, cols, rows, from)
+}
 
 func scaleBy(dst []float64, by, floor float64) (some, enough int) {
 	return scalePlain(dst, by, floor, 0)

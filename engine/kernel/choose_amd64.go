@@ -124,16 +124,14 @@ func copyBlock(dst, src []float64, cols, rows, to, from int) {
 	copyBlockAVX2(&dst[0], &src[0], cols, rows, to*valueBytes, from*valueBytes)
 }
 
-func faint(src []float64, floor float64) (some, below bool) {
-	n := 0
+func dropBelow(sums *[4]float64, dst []float64, floor float64) bool {
+	n, some := 0, 0
 	if vectors {
-		if n = len(src) &^ 3; n > 0 {
-			a, b := faintAVX2(&src[0], n, floor)
-			some, below = a != 0, b != 0
+		if n = len(dst) &^ 3; n > 0 {
+			some = dropBelowAVX2(&sums[0], &dst[0], n, floor)
 		}
 	}
-	a, b := faintPlain(src, floor, n)
-	return some || a, below || b
+	return dropBelowPlain(sums, dst, floor, n) || some != 0
 }
 
 func logs(dst, src []float64) {
@@ -249,6 +247,32 @@ func dense(src []float64) bool {
 		}
 	}
 	return densePlain(src, n)
+}
+
+func count(src []float64) int {
+	n, above := 0, 0
+	if vectors {
+		if n = len(src) &^ 3; n > 0 {
+			above = countAVX2(&src[0], n)
+		}
+	}
+	return above + countPlain(src, n)
+}
+
+func roots(dst, src []float64, cols, rows, to int) {
+	if !vectors {
+		rootsPlain(dst, src, cols, rows, to)
+		return
+	}
+	rootsAVX2(&dst[0], &src[0], cols, rows, to*valueBytes)
+}
+
+func steps(sums *[8]float64, src []float64, cols, rows, from int) {
+	if !vectors {
+		stepsPlain(sums, src, cols, rows, from)
+		return
+	}
+	stepsAVX2(&sums[0], &src[0], cols, rows, from*valueBytes)
 }
 
 func scaleBy(dst []float64, by, floor float64) (some, enough int) {

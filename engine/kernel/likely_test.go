@@ -130,6 +130,9 @@ func TestTileBits(t *testing.T) {
 		if got, want := Dense(src), densePlain(src, 0); got != want {
 			t.Fatalf("seed %d: Dense is %v", seed, got)
 		}
+		if got, want := Count(src), countPlain(src, 0); got != want {
+			t.Fatalf("seed %d: Count is %d, want %d", seed, got, want)
+		}
 		got, want := append([]float64(nil), src...), append([]float64(nil), src...)
 		some, enough := Scale(got, 0.3, 1e-14)
 		if s, e := scalePlain(want, 0.3, 1e-14, 0); s != some || e != enough {
@@ -142,7 +145,11 @@ func TestTileBits(t *testing.T) {
 		src := make([]float64, cols*rows)
 		for i := range src {
 			src[i] = math.Exp(-20 * rng.Float64())
+			if rng.IntN(20) == 0 {
+				src[i] = awkward[rng.IntN(len(awkward)-1)] // 1e300 would drown the others
+			}
 		}
+		rootsAndSteps(t, src, cols, rows, cols+1+rng.IntN(5))
 		var sums [24]float64
 		blockMomentsPlain(&sums, src, cols)
 		m := BlockMoments(src, cols)
@@ -163,5 +170,42 @@ func TestTileBits(t *testing.T) {
 				t.Fatalf("seed %d: moment %d of %d × %d cells is %v, want %v", seed, k, cols, rows, m[k], want[k])
 			}
 		}
+	}
+}
+
+// rootsAndSteps compares Roots and Steps with plain Go and with sums written another way.
+func rootsAndSteps(t *testing.T, src []float64, cols, rows, apart int) {
+	t.Helper()
+	if rows == 0 {
+		Roots(nil, src, cols, apart)
+		return
+	}
+	got, want := make([]float64, (rows+1)*apart), make([]float64, (rows+1)*apart)
+	Roots(got, src, cols, apart)
+	rootsPlain(want, src, cols, rows, apart)
+	sameBits(t, "Roots", got, want)
+	for i, v := range src {
+		if r := got[i/cols*apart+i%cols]; r != math.Sqrt(v) {
+			t.Fatalf("the root of %v is %v", v, r)
+		}
+	}
+	for i := range got { // what lies beyond, too
+		if got[i] == 0 {
+			got[i] = float64(i%7) / 8
+		}
+	}
+	x, y := Steps(got, cols, rows, apart)
+	var sums [8]float64
+	stepsPlain(&sums, got, cols, rows, apart)
+	s := func(k int) float64 { return (sums[k] + sums[k+1]) + (sums[k+2] + sums[k+3]) }
+	sameBits(t, "Steps", []float64{x, y}, []float64{s(0), s(4)})
+	var sumX, sumY float64
+	for i := range rows * cols {
+		at := i/cols*apart + i%cols
+		sumX += math.Pow(got[at+1]-got[at], 2)
+		sumY += math.Pow(got[at+apart]-got[at], 2)
+	}
+	if math.Abs(x-sumX) > 1e-13*sumX || math.Abs(y-sumY) > 1e-13*sumY {
+		t.Fatalf("steps of %d × %d are %v and %v, want %v and %v", cols, rows, x, y, sumX, sumY)
 	}
 }

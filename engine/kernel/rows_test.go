@@ -154,7 +154,7 @@ func TestWidenBits(t *testing.T) {
 	}
 }
 
-// TestBlockBits compares CopyBlock and Faint with plain Go.
+// TestBlockBits compares CopyBlock and DropBelow with plain Go, and the latter with what it is to do.
 func TestBlockBits(t *testing.T) {
 	const seed = 9
 	rng := rand.New(rand.NewPCG(seed, 1))
@@ -173,14 +173,26 @@ func TestBlockBits(t *testing.T) {
 				src[i] = math.Copysign(0, src[i])
 			}
 		}
-		some, below := Faint(src, floor)
-		if a, b := faintPlain(src, floor, 0); a != some || b != below {
-			t.Fatalf("seed %d: Faint(%v, %v) is %v, %v", seed, src, floor, some, below)
+		dropped, left := 0.0, false
+		kept := slices.Clone(src)
+		for i, v := range src {
+			if v > 0 && v < floor {
+				dropped += v
+				kept[i] = 0
+			}
+			left = left || kept[i] > 0
 		}
-		plain := slices.ContainsFunc(src, func(v float64) bool { return v > 0 && v < floor })
-		if plain != below {
-			t.Fatalf("seed %d: below is %v", seed, below)
+		plain := slices.Clone(src)
+		var sums [4]float64
+		if some := dropBelowPlain(&sums, plain, floor, 0); some != left {
+			t.Fatalf("seed %d: in plain Go, some are left is %v", seed, some)
 		}
+		some, sum := DropBelow(src, floor)
+		if some != left || math.Abs(sum-dropped) > 1e-15*dropped {
+			t.Fatalf("seed %d: %v and %v, want %v and %v", seed, some, sum, left, dropped)
+		}
+		sameBits(t, "DropBelow in plain Go", plain, kept)
+		sameBits(t, "DropBelow", append(src, sum), append(kept, (sums[0]+sums[1])+(sums[2]+sums[3])))
 	}
 }
 

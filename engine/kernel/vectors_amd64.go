@@ -44,10 +44,10 @@ func widenAVX2(to *int32, rows *int32, n int, cols int32, beyond int32)
 //go:noescape
 func copyBlockAVX2(dst *float64, src *float64, cols int, rows int, to int, from int)
 
-// faintAVX2 is faintPlain for n values, a multiple of 4; other than 0 for true.
+// dropBelowAVX2 is dropBelowPlain for n values, a multiple of 4; other than 0 for true.
 //
 //go:noescape
-func faintAVX2(src *float64, n int, floor float64) (some int, below int)
+func dropBelowAVX2(sums *float64, dst *float64, n int, floor float64) (some int)
 
 // weighAVX2 is weighPlain for n values, a multiple of 4.
 //
@@ -108,6 +108,21 @@ func likelyAVX2(sums *float64, dst *float64, mass *float64, residual *float64, r
 //
 //go:noescape
 func denseAVX2(src *float64, n int) (zeros int)
+
+// countAVX2 is countPlain for n values, a multiple of 4.
+//
+//go:noescape
+func countAVX2(src *float64, n int) (above int)
+
+// rootsAVX2 is rootsPlain; cols is a multiple of 4, to in bytes.
+//
+//go:noescape
+func rootsAVX2(dst *float64, src *float64, cols int, rows int, to int)
+
+// stepsAVX2 is stepsPlain; cols is a multiple of 4, from in bytes.
+//
+//go:noescape
+func stepsAVX2(sums *float64, src *float64, cols int, rows int, from int)
 
 // scaleAVX2 is scalePlain for n values, a multiple of 4.
 //

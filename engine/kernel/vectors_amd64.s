@@ -960,12 +960,12 @@ next:
 	VZEROUPPER
 	RET
 
-// func faintAVX2(src *float64, n int, floor float64) (some int, below int)
+// func dropBelowAVX2(sums *float64, dst *float64, n int, floor float64) (some int)
 // Requires: AVX
-TEXT ·faintAVX2(SB), NOSPLIT, $0-40
-	MOVQ         src+0(FP), AX
-	MOVQ         n+8(FP), CX
-	VBROADCASTSD floor+16(FP), Y0
+TEXT ·dropBelowAVX2(SB), NOSPLIT, $0-40
+	MOVQ         dst+8(FP), AX
+	MOVQ         n+16(FP), CX
+	VBROADCASTSD floor+24(FP), Y0
 	VXORPD       Y1, Y1, Y1
 	VXORPD       Y2, Y2, Y2
 	VXORPD       Y3, Y3, Y3
@@ -973,19 +973,22 @@ TEXT ·faintAVX2(SB), NOSPLIT, $0-40
 four:
 	VMOVUPD   (AX), Y4
 	VCMPPD    $0x1e, Y1, Y4, Y5
-	VCMPPD    $0x11, Y0, Y4, Y4
-	VANDPD    Y5, Y4, Y4
+	VCMPPD    $0x11, Y0, Y4, Y6
+	VANDPD    Y5, Y6, Y6
+	VANDNPD   Y4, Y6, Y5
+	VANDPD    Y4, Y6, Y6
+	VADDPD    Y6, Y3, Y3
+	VMOVUPD   Y5, (AX)
+	VCMPPD    $0x1e, Y1, Y5, Y5
 	VORPD     Y5, Y2, Y2
-	VORPD     Y4, Y3, Y3
 	ADDQ      $0x20, AX
 	SUBQ      $0x04, CX
 	JNZ       four
 	VMOVMSKPD Y2, AX
-	VMOVMSKPD Y3, CX
 	MOVLQSX   AX, AX
-	MOVQ      AX, some+24(FP)
-	MOVLQSX   CX, AX
-	MOVQ      AX, below+32(FP)
+	MOVQ      AX, some+32(FP)
+	MOVQ      sums+0(FP), AX
+	VMOVUPD   Y3, (AX)
 	VZEROUPPER
 	RET
 
@@ -3366,6 +3369,91 @@ four:
 	JNZ       four
 	VMOVMSKPD Y1, AX
 	MOVQ      AX, zeros+16(FP)
+	VZEROUPPER
+	RET
+
+// func countAVX2(src *float64, n int) (above int)
+// Requires: AVX, AVX2
+TEXT ·countAVX2(SB), NOSPLIT, $0-24
+	MOVQ   src+0(FP), AX
+	MOVQ   n+8(FP), CX
+	VXORPD Y0, Y0, Y0
+	VXORPD Y2, Y2, Y2
+
+four:
+	VCMPPD       $0x11, (AX), Y0, Y1
+	VPSUBQ       Y1, Y2, Y2
+	ADDQ         $0x20, AX
+	SUBQ         $0x04, CX
+	JNZ          four
+	VEXTRACTI128 $0x01, Y2, X0
+	VPADDQ       X0, X2, X2
+	VPSHUFD      $0x4e, X2, X0
+	VPADDQ       X0, X2, X2
+	VMOVQ        X2, AX
+	MOVQ         AX, above+16(FP)
+	VZEROUPPER
+	RET
+
+// func rootsAVX2(dst *float64, src *float64, cols int, rows int, to int)
+// Requires: AVX
+TEXT ·rootsAVX2(SB), NOSPLIT, $0-40
+	MOVQ dst+0(FP), AX
+	MOVQ src+8(FP), CX
+	MOVQ cols+16(FP), DX
+	MOVQ rows+24(FP), BX
+	MOVQ to+32(FP), SI
+
+row:
+	XORQ DI, DI
+
+four:
+	VSQRTPD (CX)(DI*8), Y0
+	VMOVUPD Y0, (AX)(DI*8)
+	ADDQ    $0x04, DI
+	CMPQ    DI, DX
+	JB      four
+	LEAQ    (CX)(DI*8), CX
+	ADDQ    SI, AX
+	DECQ    BX
+	JNZ     row
+	VZEROUPPER
+	RET
+
+// func stepsAVX2(sums *float64, src *float64, cols int, rows int, from int)
+// Requires: AVX
+TEXT ·stepsAVX2(SB), NOSPLIT, $0-40
+	MOVQ   src+8(FP), AX
+	MOVQ   cols+16(FP), CX
+	MOVQ   rows+24(FP), DX
+	MOVQ   from+32(FP), BX
+	VXORPD Y3, Y3, Y3
+	VXORPD Y4, Y4, Y4
+
+row:
+	XORQ SI, SI
+	MOVQ AX, DI
+	ADDQ BX, DI
+
+four:
+	VMOVUPD (AX)(SI*8), Y0
+	VMOVUPD 8(AX)(SI*8), Y1
+	VMOVUPD (DI)(SI*8), Y2
+	VSUBPD  Y0, Y1, Y1
+	VSUBPD  Y0, Y2, Y2
+	VMULPD  Y1, Y1, Y1
+	VMULPD  Y2, Y2, Y2
+	VADDPD  Y1, Y3, Y3
+	VADDPD  Y2, Y4, Y4
+	ADDQ    $0x04, SI
+	CMPQ    SI, CX
+	JB      four
+	MOVQ    DI, AX
+	DECQ    DX
+	JNZ     row
+	MOVQ    sums+0(FP), AX
+	VMOVUPD Y3, (AX)
+	VMOVUPD Y4, 32(AX)
 	VZEROUPPER
 	RET
 

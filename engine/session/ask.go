@@ -30,7 +30,9 @@ func (s *Session) summarise() *summary.Posterior {
 	}
 	p.GapS = st.gapS
 	p.LostAlarm = st.aside.raise(p)
-	s.stand(p.MeanFrame, p.Heading)
+	if !s.standOnLattice() {
+		s.stand(p.MeanFrame, p.Heading)
+	}
 	st.evidence, st.gapS, st.posteriorAt, st.unread = nil, 0, st.time, false
 	s.fresh = true
 	if huge {
@@ -77,6 +79,9 @@ func alongRoads(m sensor.Measurement) bool {
 }
 
 func (s *Session) takePose() {
+	if s.standOnLattice() {
+		return
+	}
 	s.fresh = false // the desk's sum has only part of it
 	in := s.input()
 	mean, heading, err := s.desk().sum.Pose(&in)
@@ -84,6 +89,18 @@ func (s *Session) takePose() {
 		panic(fmt.Sprintf("session: %v", err)) // a belief is never empty
 	}
 	s.stand(mean, heading)
+}
+
+// standOnLattice takes the pose of a lattice without velocities and with nothing beside it,
+// which is its mean, without reading its cells one by one; false if the belief is none.
+func (s *Session) standOnLattice() bool {
+	b := s.state.belief
+	if len(b.Axes) > 0 || b.K() > 0 || s.state.aside.off > 0 {
+		return false
+	}
+	_, mean, _ := b.Moments(s.space, &s.desk().work)
+	s.stand(mean, summary.Direction{})
+	return true
 }
 
 // stand keeps where the vehicle is and which way it faces, for what is turned into

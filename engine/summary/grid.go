@@ -2,8 +2,7 @@ package summary
 
 import (
 	"math"
-
-	"leadline/engine/geo"
+	"slices"
 )
 
 func (h *hills) reset(side float64, entries int) {
@@ -17,12 +16,8 @@ func (h *hills) reset(side float64, entries int) {
 // lay makes the grid a plain array that spans the entries with two nodes to
 // spare, if that is at most four times as many nodes as entries and 1024.
 func (h *hills) lay(east, north []float64) {
-	box := geo.EmptyBox()
-	for i := range east {
-		box = box.Extend(geo.Point{E: east[i], N: north[i]})
-	}
-	col0, row0 := math.Floor(box.Min.E/h.side)-2, math.Floor(box.Min.N/h.side)-2
-	cols, rows := math.Floor(box.Max.E/h.side)+4-col0, math.Floor(box.Max.N/h.side)+4-row0
+	col0, row0 := math.Floor(slices.Min(east)/h.side)-2, math.Floor(slices.Min(north)/h.side)-2
+	cols, rows := math.Floor(slices.Max(east)/h.side)+4-col0, math.Floor(slices.Max(north)/h.side)+4-row0
 	if cols*rows > float64(4*len(east)+1024) {
 		return
 	}

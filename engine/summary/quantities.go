@@ -118,6 +118,9 @@ func (s *Summarizer) offMoments(in *Input, q int, use func(m, mean, variance flo
 // as wide as the whole belief. A point has entropy ln(1e-12).
 func (s *Summarizer) entropy(in *Input) float64 {
 	c, b := in.Cloud, in.Belief
+	if s.dim == 2 && b.K() == 0 {
+		return s.latticeEntropy(b.Lattice.SpacingM)
+	}
 	h, last, lastLog := 0.0, 1.0, 0.0
 	for i := 0; i < s.cells; {
 		// One cell: entries i to j.
@@ -143,11 +146,8 @@ func (s *Summarizer) entropy(in *Input) float64 {
 			} else {
 				size2 = b.Lattice.SpacingM * b.Lattice.SpacingM
 				size2 *= size2
-				det = math.Inf(1)
-				if len(b.Quantities) > 0 {
-					v := s.cellCov(i, j, m)
-					det = twoPiE * twoPiE * (float64(v.EE*v.NN) - float64(v.EN*v.EN))
-				}
+				v := s.cellCov(i, j, m)
+				det = twoPiE * twoPiE * (float64(v.EE*v.NN) - float64(v.EN*v.EN))
 			}
 			if v := max(min(size2, det), 1e-24); v != last {
 				last, lastLog = v, 0.5*kernel.Log(v)
@@ -155,6 +155,27 @@ func (s *Summarizer) entropy(in *Input) float64 {
 			h += float64(m * (lastLog - kernel.Log(m)))
 		}
 		i = j
+	}
+	return h
+}
+
+// latticeEntropy is entropy of a lattice, whose cells are filled.
+func (s *Summarizer) latticeEntropy(spacingM float64) float64 {
+	size2 := spacingM * spacingM
+	h, size := 0.0, 0.5*kernel.Log(max(size2*size2, 1e-24))
+	var share, logs [256]float64
+	for left := s.mass[:s.cells]; len(left) > 0; {
+		run := left[:min(len(share), len(left))]
+		left = left[len(run):]
+		for i, m := range run {
+			share[i] = m / s.onShare
+		}
+		kernel.Logs(logs[:len(run)], share[:len(run)])
+		for i, m := range share[:len(run)] {
+			if m > leastEntropy {
+				h += float64(m * (size - logs[i]))
+			}
+		}
 	}
 	return h
 }

@@ -54,35 +54,37 @@ func copyBlock() {
 	RET()
 }
 
-// faint is kernel.Faint for n values, a multiple of 4.
-func faint() {
-	TEXT("faintAVX2", NOSPLIT, "func(src *float64, n int, floor float64) (some, below int)")
+// dropBelow is kernel.DropBelow for n values, a multiple of 4.
+func dropBelow() {
+	TEXT("dropBelowAVX2", NOSPLIT, "func(sums, dst *float64, n int, floor float64) (some int)")
 	Pragma("noescape")
-	Doc("faintAVX2 is faintPlain for n values, a multiple of 4; other than 0 for true.")
-	src, n := Load(Param("src"), GP64()), Load(Param("n"), GP64())
+	Doc("dropBelowAVX2 is dropBelowPlain for n values, a multiple of 4; other than 0 for true.")
+	dst, n := Load(Param("dst"), GP64()), Load(Param("n"), GP64())
 	floor := broadcast("floor")
-	zero, any, low, v, above, under := YMM(), YMM(), YMM(), YMM(), YMM(), YMM()
-	for _, r := range []VecVirtual{zero, any, low} {
+	zero, any, sum, v, above, under := YMM(), YMM(), YMM(), YMM(), YMM(), YMM()
+	for _, r := range []VecVirtual{zero, any, sum} {
 		VXORPD(r, r, r)
 	}
 	Label("four")
-	VMOVUPD(Mem{Base: src}, v)
+	VMOVUPD(Mem{Base: dst}, v)
 	VCMPPD(Imm(0x1e), zero, v, above)  // v > 0, quiet
 	VCMPPD(Imm(0x11), floor, v, under) // v < floor
 	VANDPD(above, under, under)
+	VANDNPD(v, under, above) // what stays
+	VANDPD(v, under, under)
+	VADDPD(under, sum, sum)
+	VMOVUPD(above, Mem{Base: dst})
+	VCMPPD(Imm(0x1e), zero, above, above)
 	VORPD(above, any, any)
-	VORPD(under, low, low)
-	ADDQ(Imm(32), src)
+	ADDQ(Imm(32), dst)
 	SUBQ(Imm(4), n)
 	JNZ(LabelRef("four"))
-	some, below := GP32(), GP32()
+	some := GP32()
 	VMOVMSKPD(any, some)
-	VMOVMSKPD(low, below)
 	wide := GP64()
 	MOVLQSX(some, wide)
 	Store(wide, ReturnIndex(0))
-	MOVLQSX(below, wide)
-	Store(wide, ReturnIndex(1))
+	VMOVUPD(sum, Mem{Base: Load(Param("sums"), GP64())})
 	VZEROUPPER()
 	RET()
 }

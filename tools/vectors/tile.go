@@ -30,6 +30,99 @@ func dense() {
 	RET()
 }
 
+// count is kernel.Count for n values, a multiple of 4.
+func count() {
+	TEXT("countAVX2", NOSPLIT, "func(src *float64, n int) (above int)")
+	Pragma("noescape")
+	Doc("countAVX2 is countPlain for n values, a multiple of 4.")
+	src, n := Load(Param("src"), GP64()), Load(Param("n"), GP64())
+	zero, t, some := YMM(), YMM(), YMM()
+	VXORPD(zero, zero, zero)
+	VXORPD(some, some, some)
+	Label("four")
+	VCMPPD(Imm(0x11), Mem{Base: src}, zero, t) // 0 < v, quiet
+	VPSUBQ(t, some, some)                      // true is -1
+	ADDQ(Imm(32), src)
+	SUBQ(Imm(4), n)
+	JNZ(LabelRef("four"))
+	Store(addLanes(some), ReturnIndex(0))
+	VZEROUPPER()
+	RET()
+}
+
+// addLanes is the sum of the four integers of a register.
+func addLanes(r VecVirtual) Register {
+	high, low, sum := XMM(), r.AsX(), GP64()
+	VEXTRACTI128(Imm(1), r, high)
+	VPADDQ(high, low, low)
+	VPSHUFD(Imm(0b01_00_11_10), low, high)
+	VPADDQ(high, low, low)
+	VMOVQ(low, sum)
+	return sum
+}
+
+// roots is kernel.Roots for whole lanes.
+func roots() {
+	TEXT("rootsAVX2", NOSPLIT, "func(dst, src *float64, cols, rows, to int)")
+	Pragma("noescape")
+	Doc("rootsAVX2 is rootsPlain; cols is a multiple of 4, to in bytes.")
+	dst, src := Load(Param("dst"), GP64()), Load(Param("src"), GP64())
+	cols, rows, to := Load(Param("cols"), GP64()), Load(Param("rows"), GP64()), Load(Param("to"), GP64())
+	c, v := GP64(), YMM()
+	Label("row")
+	XORQ(c, c)
+	Label("four")
+	VSQRTPD(Mem{Base: src, Index: c, Scale: 8}, v)
+	VMOVUPD(v, Mem{Base: dst, Index: c, Scale: 8})
+	ADDQ(Imm(4), c)
+	CMPQ(c, cols)
+	JB(LabelRef("four"))
+	LEAQ(Mem{Base: src, Index: c, Scale: 8}, src)
+	ADDQ(to, dst)
+	DECQ(rows)
+	JNZ(LabelRef("row"))
+	VZEROUPPER()
+	RET()
+}
+
+// steps is kernel.Steps.
+func steps() {
+	TEXT("stepsAVX2", NOSPLIT, "func(sums, src *float64, cols, rows, from int)")
+	Pragma("noescape")
+	Doc("stepsAVX2 is stepsPlain; cols is a multiple of 4, from in bytes.")
+	src := Load(Param("src"), GP64())
+	cols, rows, from := Load(Param("cols"), GP64()), Load(Param("rows"), GP64()), Load(Param("from"), GP64())
+	c, above := GP64(), GP64()
+	v, x, y, sumX, sumY := YMM(), YMM(), YMM(), YMM(), YMM()
+	VXORPD(sumX, sumX, sumX)
+	VXORPD(sumY, sumY, sumY)
+	Label("row")
+	XORQ(c, c)
+	MOVQ(src, above)
+	ADDQ(from, above)
+	Label("four")
+	VMOVUPD(Mem{Base: src, Index: c, Scale: 8}, v)
+	VMOVUPD(Mem{Base: src, Index: c, Scale: 8, Disp: 8}, x)
+	VMOVUPD(Mem{Base: above, Index: c, Scale: 8}, y)
+	VSUBPD(v, x, x)
+	VSUBPD(v, y, y)
+	VMULPD(x, x, x)
+	VMULPD(y, y, y)
+	VADDPD(x, sumX, sumX)
+	VADDPD(y, sumY, sumY)
+	ADDQ(Imm(4), c)
+	CMPQ(c, cols)
+	JB(LabelRef("four"))
+	MOVQ(above, src)
+	DECQ(rows)
+	JNZ(LabelRef("row"))
+	to := Load(Param("sums"), GP64())
+	VMOVUPD(sumX, Mem{Base: to})
+	VMOVUPD(sumY, Mem{Base: to, Disp: 32})
+	VZEROUPPER()
+	RET()
+}
+
 // scaleBy is kernel.Scale for n values, a multiple of 4.
 func scaleBy() {
 	TEXT("scaleAVX2", NOSPLIT, "func(dst *float64, n int, by, floor float64) (some, enough int)")
@@ -52,13 +145,7 @@ func scaleBy() {
 	SUBQ(Imm(4), n)
 	JNZ(LabelRef("four"))
 	for k, r := range []VecVirtual{some, enough} {
-		high, low, count := XMM(), r.AsX(), GP64()
-		VEXTRACTI128(Imm(1), r, high)
-		VPADDQ(high, low, low)
-		VPSHUFD(Imm(0b01_00_11_10), low, high)
-		VPADDQ(high, low, low)
-		VMOVQ(low, count)
-		Store(count, ReturnIndex(k))
+		Store(addLanes(r), ReturnIndex(k))
 	}
 	VZEROUPPER()
 	RET()
