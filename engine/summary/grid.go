@@ -2,7 +2,8 @@ package summary
 
 import (
 	"math"
-	"slices"
+
+	"leadline/engine/geo"
 )
 
 func (h *hills) reset(side float64, entries int) {
@@ -15,10 +16,10 @@ func (h *hills) reset(side float64, entries int) {
 
 // lay makes the grid a plain array that spans the entries with two nodes to
 // spare, if that is at most four times as many nodes as entries and 1024.
-func (h *hills) lay(east, north []float64) {
-	col0, row0 := math.Floor(slices.Min(east)/h.side)-2, math.Floor(slices.Min(north)/h.side)-2
-	cols, rows := math.Floor(slices.Max(east)/h.side)+4-col0, math.Floor(slices.Max(north)/h.side)+4-row0
-	if cols*rows > float64(4*len(east)+1024) {
+func (h *hills) lay(box geo.Box, entries int) {
+	col0, row0 := math.Floor(box.Min.E/h.side)-2, math.Floor(box.Min.N/h.side)-2
+	cols, rows := math.Floor(box.Max.E/h.side)+4-col0, math.Floor(box.Max.N/h.side)+4-row0
+	if cols*rows > float64(4*entries+1024) {
 		return
 	}
 	h.col0, h.row0, h.width = int32(col0), int32(row0), int32(cols)

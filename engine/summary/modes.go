@@ -39,10 +39,11 @@ type modeSum struct {
 func (s *Summarizer) findModes(dst *Posterior, in *Input) (best float64, heavy int) {
 	side := max(s.opt.AlertLimitM/sidesPerLimit, s.typicalM)
 	// The grid must number its columns in 30 bits; no map is so large.
-	side = max(side, s.extent()/(1<<30))
+	box := s.box()
+	side = max(side, extent(box)/(1<<30))
 	h := &s.hills
 	h.reset(side, len(s.mass))
-	h.lay(s.east, s.north)
+	h.lay(box, len(s.mass))
 	h.pour(s.east, s.north, s.mass)
 	h.smooth()
 	h.divide(prominence)
@@ -84,13 +85,30 @@ func (s *Summarizer) findModes(dst *Posterior, in *Input) (best float64, heavy i
 	return s.modes[0].mass, heavy
 }
 
+// box is around all entries.
+func (s *Summarizer) box() geo.Box {
+	var b geo.Box
+	b.Min.E, b.Max.E = ends(s.east)
+	b.Min.N, b.Max.N = ends(s.north)
+	return b
+}
+
 // extent is the largest coordinate.
-func (s *Summarizer) extent() float64 {
-	most := 0.0
-	for i := range s.east {
-		most = max(most, max(math.Abs(s.east[i]), math.Abs(s.north[i])))
+func extent(b geo.Box) float64 { return max(-b.Min.E, -b.Min.N, b.Max.E, b.Max.N) }
+
+// ends are the least and the greatest of numbers, without the care that slices.Min takes
+// of those that are none, at a third of its cost.
+func ends(x []float64) (least, most float64) {
+	least, most = x[0], x[0]
+	for _, v := range x {
+		if v < least {
+			least = v
+		}
+		if v > most {
+			most = v
+		}
 	}
-	return most
+	return least, most
 }
 
 // gather gives every entry its mode and sums the modes, heaviest first (the

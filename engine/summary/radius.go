@@ -49,8 +49,8 @@ func (s *Summarizer) takeApart(centre geo.Point, meanSquare float64) {
 	if s.square != (Cov{}) {
 		s.discs = slices.Grow(s.discs, len(s.mass)) // and a lattice just one
 	}
-	for i, m := range s.mass {
-		if m > 0 {
+	for i := s.takeSquares(centre); i < len(s.mass); i++ {
+		if m := s.mass[i]; m > 0 {
 			s.take(m, geo.Point{E: s.east[i], N: s.north[i]}.Sub(centre), s.covs[i], meanSquare)
 		}
 	}
@@ -70,6 +70,27 @@ func (s *Summarizer) takeApart(centre geo.Point, meanSquare float64) {
 		s.ringMass[ringOf(a.distance())] += a.mass
 		s.maxReach = max(s.maxReach, a.reach)
 	}
+}
+
+// takeSquares takes the cells of a lattice, which are alike, if each is one disc; it returns how
+// many entries that are.
+func (s *Summarizer) takeSquares(centre geo.Point) int {
+	if s.square == (Cov{}) {
+		return 0
+	}
+	l1, l2 := s.covs[0].eigen()
+	if l1 == 0 || l2 < asDisc*asDisc*l1 {
+		return 0
+	}
+	sigma := math.Sqrt(l1)
+	is, reach := 1/sigma, tailEnd*sigma
+	east, north := s.east[:s.cells], s.north[:s.cells]
+	for i, m := range s.mass[:s.cells] {
+		if m > 0 {
+			s.discs = append(s.discs, disc{m, geo.Point{E: east[i], N: north[i]}.Sub(centre).Norm(), is, reach})
+		}
+	}
+	return s.cells
 }
 
 // lightShare is the part of the mass asked for outside that pieces may hold together

@@ -53,7 +53,7 @@ func (s *Summarizer) Region(level float64) (*Region, error) {
 		pixel = minor
 	}
 	pixel = math.Min(pixel/4, s.grainM)
-	pixel = math.Max(math.Max(pixel, 0.01), s.extent()/(1<<30))
+	pixel = math.Max(math.Max(pixel, 0.01), extent(s.box())/(1<<30))
 	for ; ; pixel *= 2 {
 		if !s.paint(pixel) {
 			continue
