@@ -89,7 +89,7 @@ var mayImport = map[string][]string{
 		"network", "network/roadfile", "terrain", "terrain/heightfile", "fixtures/credibility", "fixtures/drives", "fixtures/outside", "fixtures/roads", "fixtures/sim",
 	},
 	"fixtures/study/local": {"engine/logfile", "fixtures/study", "terrain/heightfile"},
-	"fixtures/bench":       {"engine/client", "engine/filter", "engine/geo", "engine/plane", "engine/sensor", "engine/server", "engine/session", "engine/summary", "engine/wire", "network", "network/roadfile", "proto/leadline/v1", "terrain", "fixtures/accept", "fixtures/drives", "fixtures/reference", "fixtures/sim"},
+	"fixtures/bench":       {"engine/client", "engine/filter", "engine/geo", "engine/plane", "engine/sensor", "engine/server", "engine/session", "engine/summary", "engine/wire", "network", "network/roadfile", "proto/leadline/v1", "terrain", "terrain/heightfile", "fixtures/accept", "fixtures/drives", "fixtures/outside", "fixtures/reference", "fixtures/sim"},
 	"fixtures/bench/run":   {"fixtures/bench"},
 	"fixtures/survive": {
 		api, "engine/client", "engine/filter", "engine/journal", "engine/sensor", "engine/server", "engine/server/operate", "engine/session", "engine/summary", "engine/wire", "network/roadfile",
